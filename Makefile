@@ -1,0 +1,122 @@
+# Hushwatch. `make` builds, `make demo` plays a simulated watch, `make check` runs every test.
+# Each target installs what it needs from Debian first (see PACKAGES); set NO_INSTALL=1 to skip that.
+
+VERSION = 0.1.0
+BUILD ?= build
+ifeq ($(origin CC),default)
+CC = gcc
+endif
+SANITIZE ?=
+OPTIMIZE ?= -O2 -ftree-vectorize -march=x86-64-v2
+ifneq ($(shell uname -m),x86_64)
+OPTIMIZE = -O2 -ftree-vectorize
+endif
+
+PACKAGES = gcc make pkg-config portaudio19-dev libfftw3-dev libmicrohttpd-dev libsqlite3-dev libsndfile1-dev \
+	libconfig-dev libjansson-dev libsodium-dev libsystemd-dev
+TEST_PACKAGES = libcmocka-dev libasound2-dev libasound2-plugins python3 python3-numpy python3-scipy python3-selenium \
+	chromium chromium-driver sqlite3 openssl curl clang libclang-rt-14-dev
+
+WARNINGS = -Wall -Wextra -Wshadow -Wconversion -Wstrict-prototypes -Wmissing-prototypes -Wvla
+HARDENING = -D_FORTIFY_SOURCE=2 -fstack-protector-strong -fPIE
+CPPFLAGS += -Ilib -Idaemon -Itests -I$(BUILD)/generated -D_GNU_SOURCE -DHUSHWATCH_VERSION='"$(VERSION)"'
+CFLAGS += -std=c11 -g $(OPTIMIZE) $(WARNINGS) $(HARDENING) $(SANITIZE) -ffile-prefix-map=$(CURDIR)=. -pthread -MMD -MP
+LDFLAGS += $(SANITIZE) -pthread -pie -Wl,-z,relro,-z,now
+LIB_LIBS = -lfftw3f -lsodium -ljansson -lm
+DAEMON_LIBS = -lmicrohttpd -lsqlite3 -lsndfile -lconfig -lsystemd $(LIB_LIBS)
+
+MAINS = daemon/hushwatchd.c daemon/hushwatch.c daemon/capture/hushwatch-capture.c
+LIB_SOURCES = $(wildcard lib/*.c lib/*/*.c)
+DAEMON_SOURCES = $(filter-out $(MAINS),$(wildcard daemon/*.c daemon/*/*.c))
+LIB_OBJECTS = $(LIB_SOURCES:%.c=$(BUILD)/%.o)
+DAEMON_OBJECTS = $(DAEMON_SOURCES:%.c=$(BUILD)/%.o) $(BUILD)/generated/web.o
+SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c,$(wildcard tests/support/*.c)))
+WEB_FILES = $(wildcard web/*)
+
+PROGRAMS = $(BUILD)/hushwatchd $(BUILD)/hushwatch $(BUILD)/hushwatch-capture
+TEST_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/unit/*.c tests/reference/*.c tests/scenario/*.c \
+	tests/replay/*.c tests/system/*.c))
+BENCH_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/bench/*.c))
+FUZZ_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/fuzz/*.c))
+
+.PHONY: all programs install-needs install-test-needs demo check asan tsan soak fuzz bench clean format
+all: install-needs
+	@$(MAKE) --no-print-directory -j2 programs
+programs: $(PROGRAMS)
+
+# ---- what is needed from Debian
+define INSTALL
+@missing=""; for p in $(1); do dpkg-query -W -f '$${Status}' $$p 2>/dev/null | grep -q 'install ok' || missing="$$missing $$p"; done; \
+if [ -n "$$missing" ] && [ -z "$(NO_INSTALL)" ]; then echo "installing:$$missing"; \
+  sudo=""; [ "$$(id -u)" = 0 ] || sudo=sudo; \
+  $$sudo env DEBIAN_FRONTEND=noninteractive sh -c "apt-get -qq update && apt-get -qq install -y --no-install-recommends $$missing" >/dev/null; fi
+endef
+install-needs:
+	$(call INSTALL,$(PACKAGES))
+install-test-needs:
+	$(call INSTALL,$(PACKAGES) $(TEST_PACKAGES))
+
+# ---- objects and programs
+$(BUILD)/%.o: %.c
+	@mkdir -p $(@D)
+	$(CC) $(CPPFLAGS) $(CFLAGS) -c $< -o $@
+$(BUILD)/generated/web.c: $(WEB_FILES) tests/support/embed.sh
+	@mkdir -p $(@D)
+	sh tests/support/embed.sh $(WEB_FILES) > $@
+$(BUILD)/generated/web.o: $(BUILD)/generated/web.c
+	$(CC) $(CPPFLAGS) $(CFLAGS) -c $< -o $@
+$(BUILD)/libhushwatch.a: $(LIB_OBJECTS)
+	@rm -f $@
+	ar rcs $@ $^
+$(BUILD)/libdaemon.a: $(DAEMON_OBJECTS)
+	@rm -f $@
+	ar rcs $@ $^
+$(BUILD)/libsupport.a: $(SUPPORT_OBJECTS)
+	@rm -f $@
+	ar rcs $@ $^
+ARCHIVES = $(BUILD)/libdaemon.a $(BUILD)/libhushwatch.a
+
+$(BUILD)/hushwatchd: $(BUILD)/daemon/hushwatchd.o $(ARCHIVES)
+	$(CC) $(LDFLAGS) -o $@ $^ $(DAEMON_LIBS)
+$(BUILD)/hushwatch: $(BUILD)/daemon/hushwatch.o $(ARCHIVES)
+	$(CC) $(LDFLAGS) -o $@ $^ $(DAEMON_LIBS)
+$(BUILD)/hushwatch-capture: $(BUILD)/daemon/capture/hushwatch-capture.o $(BUILD)/libhushwatch.a
+	$(CC) $(LDFLAGS) -o $@ $^ -lportaudio $(LIB_LIBS)
+
+# ---- tests: every C file in a test folder is a program, every .sh and .py in it a script
+$(BUILD)/tests/%: $(BUILD)/tests/%.o $(BUILD)/libsupport.a $(ARCHIVES)
+	$(CC) $(LDFLAGS) -o $@ $^ -lcmocka $(DAEMON_LIBS)
+$(BUILD)/tests/unit/create_failures: LDFLAGS += -Wl,--wrap=malloc,--wrap=calloc,--wrap=realloc,--wrap=aligned_alloc
+$(BUILD)/libasound_module_pcm_feed.so: tests/support/pcm_feed.c
+	@mkdir -p $(@D)
+	gcc -O2 -std=gnu11 -shared -fPIC -DPIC $< -o $@ -lasound
+
+tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BUILD)/libasound_module_pcm_feed.so
+check: install-test-needs
+	@$(MAKE) --no-print-directory -j2 tests
+	@/usr/bin/python3 tests/support/run.py --build $(BUILD) $(ONLY)
+
+ASAN_FLAGS = -fsanitize=address,undefined -fno-sanitize-recover=all -fno-omit-frame-pointer
+TSAN_FLAGS = -fsanitize=thread
+asan: install-test-needs
+	@$(MAKE) --no-print-directory -j2 tests BUILD=build/asan SANITIZE="$(ASAN_FLAGS)" HARDENING=-fPIE OPTIMIZE=-O1
+	@/usr/bin/python3 tests/support/run.py --build build/asan --short unit replay system $(ONLY)
+tsan: install-test-needs
+	@$(MAKE) --no-print-directory -j2 tests BUILD=build/tsan SANITIZE="$(TSAN_FLAGS)" HARDENING=-fPIE OPTIMIZE=-O1
+	@/usr/bin/python3 tests/support/run.py --build build/tsan --short unit replay system $(ONLY)
+soak: install-test-needs
+	@$(MAKE) --no-print-directory -j2 tests
+	@/usr/bin/python3 tests/support/run.py --build $(BUILD) --long $(ONLY)
+bench: install-test-needs
+	@$(MAKE) --no-print-directory -j2 $(PROGRAMS) $(BENCH_PROGRAMS)
+	@for b in $(BENCH_PROGRAMS); do $$b || exit 1; done
+
+demo: all
+	@sh tests/support/demo.sh $(BUILD)
+format:
+	clang-format -i $$(git ls-files '*.c' '*.h')
+clean:
+	rm -rf build
+
+-include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
+.SECONDARY:

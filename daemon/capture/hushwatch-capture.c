@@ -1,0 +1,5 @@
+/* hushwatch-capture: live sound. */
+int main(void)
+{
+    return 2;
+}

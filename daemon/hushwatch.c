@@ -1,0 +1,5 @@
+/* hushwatch: the tool. */
+int main(void)
+{
+    return 2;
+}

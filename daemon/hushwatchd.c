@@ -1,0 +1,5 @@
+/* hushwatchd: the daemon. */
+int main(void)
+{
+    return 2;
+}

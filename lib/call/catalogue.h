@@ -1,0 +1,58 @@
+/* The call catalogue as data: what a call of each class must look like, and which group makes it.
+ * Files in config/calls, one class each; daemon/settings/catalogue.c loads them. */
+#ifndef CALL_CATALOGUE_H
+#define CALL_CATALOGUE_H
+
+#include "call/call.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define CATALOGUE_MAX_CLASSES 64
+#define CATALOGUE_TEXT_SIZE 512
+
+/* What a traced contour must be like to be a call of the class. */
+struct tone_shape {
+    double window_s;      /* spectrum window; classes with equal window_s share one tracer */
+    double min_snr_db;    /* mean over the contour of cell power over background */
+    double min_s, max_s;  /* duration */
+    double min_extent_hz; /* highest less lowest frequency */
+    double max_extent_hz;
+    double min_sweep_hz; /* end less start; negative for a fall; -INFINITY where free */
+    double max_sweep_hz;
+    double max_rate_hz_s; /* steepest change that the tracer follows */
+};
+
+/* What pulses and their rhythm must be like. */
+struct train_shape {
+    double pulse_s;    /* duration at which the energy detector integrates */
+    double min_snr_db; /* pulse peak power over background power in the class's band */
+    double min_interval_s, max_interval_s;
+    double max_jitter; /* largest standard deviation of ln(interval ratio) that is a train */
+    double min_jitter; /* smallest: below it is a machine; 0 where free */
+    uint32_t min_pulses;
+    double guard_low_hz, guard_high_hz; /* a band that must be quieter ... 0, 0 where none */
+    double min_guard_db;                /* ... by at least this much */
+    double max_pulse_s;                 /* a pulse that lasts longer is none of the class */
+};
+
+struct call_class {
+    char name[CALL_CLASS_SIZE];
+    enum group group;
+    enum call_form form;
+    bool animal;            /* false: a sound of the job or the sea that is counted and speaks against */
+    double low_hz, high_hz; /* band of the fundamental (tone) or of the pulse (train) */
+    double natural_delay_s; /* from the end of the call to what the class needs to be sure */
+    double false_per_hour;  /* the rate in Gaussian noise that the thresholds are set for */
+    double certainty;       /* 0..1 */
+    double evidence;        /* log-odds that one call adds to a contact of the group */
+    char source[CATALOGUE_TEXT_SIZE]; /* where the figures come from, with their marks */
+    struct tone_shape tone;           /* of a tone */
+    struct train_shape train;         /* of a train */
+};
+
+struct catalogue {
+    uint32_t n_classes;
+    struct call_class classes[CATALOGUE_MAX_CLASSES];
+};
+
+#endif

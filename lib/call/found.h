@@ -1,0 +1,43 @@
+/* What the detectors of one channel hand to lib/listen, in frames of that channel; and why they handed
+ * nothing. */
+#ifndef CALL_FOUND_H
+#define CALL_FOUND_H
+
+#include <stdint.h>
+
+struct found_call {
+    uint32_t class_index;          /* into the catalogue */
+    double start_frame, end_frame; /* sub-sample */
+    uint64_t known_frame;          /* the last frame that was needed to emit it */
+    double low_hz, high_hz;
+    uint32_t n_pulses;      /* 0 for a tone */
+    double interval_frames; /* 0 for a tone */
+    double snr_db;
+    double mean_square_pa2; /* in the call's band, over its time */
+};
+
+struct found_sink {
+    void (*take)(void *context, const struct found_call *found);
+    void *context;
+};
+
+/* Every rejection has a name and a counter, so that "nothing found" can be explained. */
+enum rejection {
+    REJECT_TOO_WEAK,
+    REJECT_TOO_SHORT,
+    REJECT_TOO_LONG,
+    REJECT_STEADY_LINE,
+    REJECT_REVERBERATION,
+    REJECT_BROADBAND,
+    REJECT_SHAPE,
+    REJECT_NO_RHYTHM,
+    REJECT_MACHINE_RHYTHM,
+    REJECT_OWN_SOURCE,
+    REJECT_TOO_MANY,
+    REJECT_COUNT
+};
+
+/* "too weak", "steady line" ...; never NULL. */
+const char *rejection_text(enum rejection rejection);
+
+#endif

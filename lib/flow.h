@@ -1,0 +1,212 @@
+/* What travels between stages, and nothing else: block, event, outcome.
+ *
+ *   input -> block -> listen -> event -> watch -> outcome -> record -> ledger and pages
+ *                     notes, run marks --^
+ *
+ * Every event has a place in one order, (known_ns, stream, kind, counter), in which the watch takes it. */
+#ifndef FLOW_H
+#define FLOW_H
+
+#include "call/call.h"
+#include "level/impulse.h"
+#include "level/level.h"
+#include "place/whereabouts.h"
+#include "rule/note.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define FLOW_MAX_CHANNELS 16
+#define FLOW_MAX_BLOCK_FRAMES 4096
+
+/* Frames of one stream, aligned to the sample number. Frame numbers count lost frames too. */
+struct block {
+    uint32_t stream;      /* from 1 */
+    uint64_t first_frame; /* number of the first frame; everything before it is over */
+    uint64_t lost_before; /* frames lost directly before first_frame */
+    uint32_t n_frames;    /* 0: a gap block, which only says that lost_before frames are gone */
+    uint32_t n_channels;
+    const float *samples; /* [n_frames * n_channels], interleaved, 1.0 = full scale; borrowed for the call */
+};
+
+/* Frames in a full block: the largest power of two that is at most 4096 and at most 50 ms at the rate. */
+static inline uint32_t flow_block_frames(double rate_hz)
+{
+    uint32_t n = FLOW_MAX_BLOCK_FRAMES;
+    while (n > 1 && n > 0.05 * rate_hz)
+        n /= 2;
+    return n;
+}
+
+enum unheard_cause {
+    UNHEARD_GAP,
+    UNHEARD_CLIPPING,
+    UNHEARD_OWN_SOURCE,
+    UNHEARD_DEAD_CHANNEL,
+    UNHEARD_TOO_QUIET
+};
+
+/* Time in which the watch could not hear: of one channel (0: all of the stream) and one band. */
+struct unheard {
+    uint32_t channel;
+    double low_hz, high_hz;
+    int64_t start_ns, end_ns; /* at most 10 s; longer ones come in adjoining pieces */
+    enum unheard_cause cause;
+};
+
+/* The run that begins: watch time goes on over the outage before it. */
+struct run_mark {
+    int64_t outage_start_ns; /* equal to outage_end_ns in a ledger's first run */
+    int64_t outage_end_ns;
+};
+
+enum event_kind { EVENT_RUN, EVENT_UNHEARD, EVENT_LEVEL, EVENT_IMPULSE, EVENT_CALL, EVENT_NOTE };
+
+struct event {
+    enum event_kind kind;
+    uint32_t stream;  /* 0 for what did not come from a stream: notes, run marks */
+    uint32_t run;     /* from 1 */
+    uint64_t counter; /* per run, stream and kind, from 1: with them it makes the entry's id */
+    int64_t known_ns; /* watch time at which it became known: the last sample needed to emit it */
+    union {
+        struct run_mark run_mark;
+        struct unheard unheard;
+        struct level level;
+        struct impulse impulse;
+        struct call call;
+        struct note note;
+    } as;
+};
+
+/* Where listen puts its events; called in order of known_ns. */
+struct event_sink {
+    void (*take)(void *context, const struct event *event);
+    void *context;
+};
+
+#define FLOW_ID_SIZE 48 /* "run.stream.kind.counter" */
+#define FLOW_MAX_CAUSES 16
+#define FLOW_TEXT_SIZE 256
+
+enum phase {
+    PHASE_OFF,
+    PHASE_PRE_WATCH,
+    PHASE_READY,
+    PHASE_DELAY,
+    PHASE_DETERRENT,
+    PHASE_SOFT_START,
+    PHASE_HOLD,
+    PHASE_FULL_POWER,
+    PHASE_REDUCED,
+    PHASE_VIBRO,
+    PHASE_DRILLING,
+    PHASE_LINE_TURN,
+    PHASE_TEST,
+    PHASE_BREAK,
+    PHASE_SHUTDOWN,
+    PHASE_POST_WATCH,
+    PHASE_COUNT
+};
+
+/* In rising strength within each half: what the crew should do now. */
+enum advice_word {
+    ADVICE_CARRY_ON,
+    ADVICE_MAY_START,
+    ADVICE_RESUME,
+    ADVICE_NEW_SOFT_START,
+    ADVICE_DO_NOT_START,
+    ADVICE_PREPARE_TO_STOP,
+    ADVICE_HOLD_POWER,
+    ADVICE_REDUCE_POWER,
+    ADVICE_STOP,
+    ADVICE_WORD_COUNT
+};
+
+enum contact_grade { GRADE_NONE, GRADE_LOOK, GRADE_ACT };
+enum contact_state { CONTACT_OPEN, CONTACT_LEFT, CONTACT_CLEARED, CONTACT_DISMISSED };
+
+struct contact_outcome {
+    uint32_t contact; /* its number in the ledger, from 1 */
+    enum group group;
+    enum contact_grade grade;
+    enum contact_state state;
+    uint32_t n_calls;
+    struct whereabouts whereabouts;
+    double bearing_deg, mirror_deg; /* NAN where none */
+    enum bearing_from bearing_from;
+    double p_inside; /* of the strongest zone that counts; NAN when unknown */
+};
+
+struct phase_outcome {
+    enum phase phase;
+    char reason[FLOW_TEXT_SIZE]; /* in words */
+    char clause[FLOW_TEXT_SIZE];
+    char job[IMPULSE_JOB_SIZE];
+    uint32_t n_causes;
+    char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
+};
+
+struct advice_outcome {
+    enum advice_word advice;
+    char station[NOTE_NAME_SIZE]; /* "observer", "crew": whom it is for */
+    bool confirmed;               /* false: 'not yet confirmed' by an observer */
+    char reason[FLOW_TEXT_SIZE];
+    char clause[FLOW_TEXT_SIZE];
+    char job[IMPULSE_JOB_SIZE];
+    int64_t until_ns;              /* earliest end by the rule; -1 where the rule gives none */
+    char requires[FLOW_TEXT_SIZE]; /* what the end needs, in words */
+    uint32_t n_causes;
+    char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
+};
+
+struct finding_outcome {
+    char code[NOTE_NAME_SIZE];
+    char clause[FLOW_TEXT_SIZE];
+    char job[IMPULSE_JOB_SIZE];
+    char grade[NOTE_NAME_SIZE]; /* "firm" or "indicative" */
+    char detail[FLOW_TEXT_SIZE];
+    uint32_t n_causes;
+    char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
+};
+
+enum outcome_kind { OUTCOME_EVENT, OUTCOME_CONTACT, OUTCOME_PHASE, OUTCOME_ADVICE, OUTCOME_FINDING };
+
+/* What the watch says: the event it took, completed (an impulse's job and whose, a note's known time), or a
+ * conclusion of its own. */
+struct outcome {
+    enum outcome_kind kind;
+    uint32_t run;
+    uint32_t stream;  /* 0 for conclusions */
+    uint64_t counter; /* per run, stream and kind, from 1 */
+    int64_t watch_ns;
+    union {
+        struct event event;
+        struct contact_outcome contact;
+        struct phase_outcome phase;
+        struct advice_outcome advice;
+        struct finding_outcome finding;
+    } as;
+};
+
+/* Where the watch puts its outcomes, in order of watch_ns. */
+struct outcome_sink {
+    void (*take)(void *context, const struct outcome *outcome);
+    void *context;
+};
+
+/* Writes "run.stream.kind.counter"; kind is the entry's kind: "call", "advice" ... */
+void flow_id(uint32_t run, uint32_t stream, const char *kind, uint64_t counter, char out[FLOW_ID_SIZE]);
+/* The entry kind of an event or outcome: "call", "impulse", "note", "phase" ...; never NULL. */
+const char *flow_event_kind_text(enum event_kind kind);
+const char *flow_outcome_kind_text(const struct outcome *outcome);
+
+/* Section 1's words, as pages and entries show them; never NULL. */
+const char *phase_text(enum phase phase);
+const char *advice_text(enum advice_word advice);
+const char *grade_text(enum contact_grade grade); /* "look", "act", "" */
+const char *contact_state_text(enum contact_state state);
+const char *unheard_cause_text(enum unheard_cause cause);
+const char *impulse_whose_text(enum impulse_whose whose);
+const char *bearing_from_text(enum bearing_from from); /* "true", "ahead", "" */
+const char *call_form_text(enum call_form form);
+
+#endif

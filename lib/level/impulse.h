@@ -1,0 +1,29 @@
+/* An impulse: one blow, shot or detonation with its measures (ISO 18406:2017 for piles; ISO 18405 terms). */
+#ifndef LEVEL_IMPULSE_H
+#define LEVEL_IMPULSE_H
+
+#include <stdbool.h>
+#include <stdint.h>
+
+#define IMPULSE_JOB_SIZE 32
+
+enum impulse_whose { IMPULSE_OURS, IMPULSE_OTHERS, IMPULSE_UNKNOWN };
+
+struct impulse {
+    uint32_t channel;           /* from 1 */
+    int64_t time_ns;            /* watch time of the 5 % energy point */
+    double sel_db;              /* dB re 1 uPa2 s, background energy subtracted */
+    double peak_db;             /* zero-to-peak, dB re 1 uPa */
+    double peak_to_peak_db;     /* dB re 1 uPa */
+    double rms90_db;            /* SPL over T90, dB re 1 uPa: 90 % of the energy over T90 */
+    double t90_s;               /* 5 to 95 % energy window */
+    double background_db;       /* SPL of the background just before, dB re 1 uPa */
+    bool relative;              /* channel uncalibrated: dB re full scale */
+    bool clipped;               /* measures are lower bounds */
+    bool overlapped;            /* another impulse began inside its window */
+    bool weak;                  /* energy less than 10 dB above the background in the window */
+    enum impulse_whose whose;   /* set by the watch */
+    char job[IMPULSE_JOB_SIZE]; /* set by the watch; empty where no job is open */
+};
+
+#endif

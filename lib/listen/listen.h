@@ -1,0 +1,49 @@
+/* One stream's composition: block in, events out. Owns, for each channel, calibration, levels, impulses,
+ * calls and channel health; merges a call heard on several channels into one event.
+ *
+ * Call order: create; push blocks in order of their frames; get at any time; destroy. One owner thread. */
+#ifndef LISTEN_LISTEN_H
+#define LISTEN_LISTEN_H
+
+#include "base/status.h"
+#include "base/time.h"
+#include "call/catalogue.h"
+#include "call/found.h"
+#include "flow.h"
+#include "level/calibration.h"
+#include <stdint.h>
+
+struct listen_setup {
+    uint32_t stream;     /* from 1 */
+    uint32_t run;        /* from 1 */
+    uint32_t n_channels; /* 1..16 */
+    double rate_hz;      /* 8 kHz to 1 MHz */
+    struct time_map map; /* from the stream's frames to watch time */
+    struct calibration calibration[FLOW_MAX_CHANNELS];
+    const struct catalogue *catalogue; /* borrowed for the life of the object */
+};
+
+struct listen;
+
+/* Allocates all that the stream ever needs and plans its FFTs (not thread-safe: at start only).
+ * STATUS_BAD_ARGUMENT for a rate or a channel count out of range; STATUS_NO_MEMORY. The caller owns *out. */
+enum status listen_create(const struct listen_setup *setup, struct listen **out);
+void listen_destroy(struct listen *listen);
+
+/* Takes the next block: its first_frame - lost_before must be the frame after the last block's end. Gives
+ * events in order of known_ns. STATUS_BAD_ARGUMENT when frames overlap or the channel count differs. */
+enum status listen_push(struct listen *listen, const struct block *block, const struct event_sink *sink);
+
+/* Ends the stream: what is still held (an open call, the running second) is given or dropped by rule. */
+enum status listen_finish(struct listen *listen, const struct event_sink *sink);
+
+/* Watch time up to which the stream has been heard. */
+int64_t listen_get_time(const struct listen *listen);
+
+/* Changes the map from frames to watch time from the next block on (a live device's clock drifts). */
+void listen_set_map(struct listen *listen, const struct time_map *map);
+
+/* How many candidates each class rejected, by name; out[class_index][rejection]. */
+void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_MAX_CLASSES][REJECT_COUNT]);
+
+#endif

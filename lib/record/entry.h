@@ -1,0 +1,39 @@
+/* An entry's stored text: from outcome to body, from body back to event, and the hash that chains entries.
+ *
+ * A body is one line of JSON, ASCII, keys in byte order, fixed decimals, no NaN (null instead), with "id".
+ * The stored text is what is hashed; it is never written again from parsed data. */
+#ifndef RECORD_ENTRY_H
+#define RECORD_ENTRY_H
+
+#include "base/status.h"
+#include "base/text.h"
+#include "flow.h"
+#include <stddef.h>
+#include <stdint.h>
+
+#define ENTRY_HASH_SIZE 65 /* lower-case hex SHA-256 and its terminator */
+#define ENTRY_KIND_SIZE 16
+
+/* One line of the ledger. Texts are borrowed from whoever made it. */
+struct entry {
+    int64_t seq; /* from 1, no holes */
+    const char *utc;
+    const char *kind;
+    const char *body;
+    const char *hash;
+};
+
+/* The body of an outcome. STATUS_NO_MEMORY leaves out unusable. */
+enum status entry_body(const struct outcome *outcome, struct text *out);
+
+/* The event behind the entry of an input kind (run, unheard, impulse, call, note); the watch is rebuilt from
+ * these. watch_ns is the entry's time. STATUS_NOT_FOUND for a kind that is no input (level, phase, advice
+ * ...); STATUS_BAD_FORMAT for a body that this program did not write. */
+enum status entry_event(const char *kind, const char *body, int64_t watch_ns, struct event *out);
+
+/* SHA-256, in lower-case hex, of: previous hash, newline, seq, newline, utc, newline, kind, newline, body.
+ * The previous hash of the first entry is 64 zeros. */
+void entry_hash(const char *previous_hash, int64_t seq, const char *utc, const char *kind, const char *body,
+                char out[ENTRY_HASH_SIZE]);
+
+#endif

@@ -1,0 +1,71 @@
+/* A note: anything a person enters, through one door whatever it came by (page, notes file, scene). */
+#ifndef RULE_NOTE_H
+#define RULE_NOTE_H
+
+#include "base/status.h"
+#include "call/call.h"
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#define NOTE_TEXT_SIZE 256
+#define NOTE_NAME_SIZE 64
+
+enum note_kind {
+    NOTE_SIGN_ON,         /* person, watch (visual | acoustic | crew), station for crew */
+    NOTE_SIGN_OFF,        /* person, watch */
+    NOTE_SIGHTING,        /* person, group, [species number calf distance_m bearing_deg leaving contact] */
+    NOTE_DISTANCE,        /* person, contact, distance_m, [bearing_deg leaving] */
+    NOTE_VERDICT,         /* person, contact, verdict (confirm | dismiss | left), text = reason */
+    NOTE_RELEASE,         /* person: the named observer allows the start */
+    NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer (seen | passed | stopped | declined) [text]
+                           */
+    NOTE_SOURCE,  /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
+    NOTE_JOB,     /* job, answer (open | close) */
+    NOTE_WEATHER, /* sea_state, visibility_m */
+    NOTE_MARK,    /* text */
+    NOTE_REMARK,  /* text */
+    NOTE_KIND_COUNT
+};
+
+struct note {
+    enum note_kind kind;
+    int64_t occurred_ns; /* watch time, as the person says; equal to known_ns when nothing was said */
+    int64_t known_ns;    /* watch time, stamped when the watch accepts it */
+    char person[NOTE_NAME_SIZE];
+    char watch[NOTE_NAME_SIZE];
+    char station[NOTE_NAME_SIZE];
+    char species[NOTE_NAME_SIZE];
+    char verdict[NOTE_NAME_SIZE];
+    char answer[NOTE_NAME_SIZE];
+    char advice[NOTE_NAME_SIZE];
+    char job[NOTE_NAME_SIZE];
+    char source_state[NOTE_NAME_SIZE];
+    char text[NOTE_TEXT_SIZE];
+    enum group group;  /* GROUP_UNKNOWN where not given */
+    uint32_t contact;  /* 0 where not given */
+    double number;     /* animals; NAN where not given, as all numbers below */
+    double distance_m; /* from the source */
+    double bearing_deg;
+    double sea_state;
+    double visibility_m;
+    bool calf;
+    bool leaving; /* seen leaving the zone */
+};
+
+/* An empty note of a kind: texts "", numbers NAN, times 0. */
+void note_reset(struct note *note, enum note_kind kind);
+
+/* Sets one field from text, as it arrives from a page, a notes file or a scene: names are the member names
+ * above ("person", "distance_m", "group" ...). STATUS_NOT_FOUND: no such field; STATUS_BAD_FORMAT or
+ * STATUS_OUT_OF_RANGE: the value is not allowed; then out_allowed (if not NULL) points at static text that
+ * says what is. */
+enum status note_set(struct note *note, const char *field, const char *value, const char **out_allowed);
+
+/* Whether the note has what its kind needs; if not STATUS_OK, *out_missing is the field's name (static). */
+enum status note_check(const struct note *note, const char **out_missing);
+
+const char *note_kind_text(enum note_kind kind); /* "sign-on", "sighting", "source state" ... */
+bool note_kind_from_text(const char *text, enum note_kind *out);
+
+#endif

@@ -1,0 +1,103 @@
+/* The watch: takes events in order and says what follows from them under the permit. Pure and deterministic:
+ * the same events give the same outcomes, at sea, in a scan and in a rerun years later.
+ *
+ * Call order: create; then any mix of push and advance with non-decreasing times; get at any time; destroy.
+ */
+#ifndef RULE_WATCH_H
+#define RULE_WATCH_H
+
+#include "base/status.h"
+#include "flow.h"
+#include "rule/permit.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define WATCH_MAX_PEOPLE 16
+#define WATCH_MAX_TIMERS 12
+#define WATCH_MAX_CONTACTS 64
+#define WATCH_MAX_ADVICE 32
+
+struct watch_setup {
+    const struct permit *permit; /* borrowed for the life of the watch */
+    double contact_gap_s;        /* calls of one group closer in time than this are one contact */
+    double look_evidence;        /* log-odds at which a contact is graded look */
+    double act_evidence;         /* log-odds at which a contact is graded act */
+    double evidence_decay_s;     /* time constant with which log-odds fade */
+    double sighting_log_spread;  /* doubt of a distance that a person gives */
+    double silence_s; /* no impulse for this long, and nothing said: the source is heard as silent */
+};
+
+struct watch;
+
+/* STATUS_BAD_ARGUMENT when the permit fails permit_check; STATUS_NO_MEMORY. The caller owns *out. */
+enum status watch_create(const struct watch_setup *setup, struct watch **out);
+void watch_destroy(struct watch *watch);
+
+/* Takes one event whose known_ns is not before the watch's time; first lets time pass to it. The event itself
+ * goes out as the first outcome of its time, completed. STATUS_BAD_ARGUMENT: time would run backwards. A note
+ * that makes no sense now (a verdict on an unknown contact, a release with nothing to release) is recorded
+ * all the same, and answered by a finding or ignored with a reason: never an error. */
+enum status watch_push(struct watch *watch, const struct event *event, const struct outcome_sink *sink);
+
+/* Lets time pass: timers that are due run in order, each at its own due time. */
+enum status watch_advance(struct watch *watch, int64_t watch_ns, const struct outcome_sink *sink);
+
+struct watch_timer {
+    char name[NOTE_NAME_SIZE]; /* "pre-watch", "clearance of contact 2", "soft start" ... */
+    int64_t elapsed_ns, needed_ns;
+    bool running;
+    char held_by[FLOW_TEXT_SIZE]; /* why it does not run; empty while it runs */
+};
+
+struct watch_person {
+    char name[NOTE_NAME_SIZE];
+    char watch[NOTE_NAME_SIZE]; /* "visual", "acoustic", "crew" */
+    char station[NOTE_NAME_SIZE];
+    int64_t since_ns;
+};
+
+struct watch_contact {
+    struct contact_outcome contact;
+    int64_t first_ns, last_ns; /* of its calls and sightings */
+    int64_t clears_at_ns;      /* -1 where it holds nothing back */
+    double evidence;           /* log-odds now */
+    bool seen;                 /* a person has sighted it */
+    int64_t countdown_ends_ns; /* -1 where no verdict is awaited */
+};
+
+struct watch_advice {
+    struct advice_outcome advice;
+    char id[FLOW_ID_SIZE];
+    int64_t since_ns;
+    bool in_force;
+    bool acknowledged;
+    char acknowledged_by[NOTE_NAME_SIZE];
+    char answer[NOTE_NAME_SIZE];
+};
+
+/* A copy of all that people may see; plain data. */
+struct watch_view {
+    int64_t watch_ns;
+    enum phase phase;
+    int64_t phase_since_ns;
+    char phase_reason[FLOW_TEXT_SIZE];
+    char phase_clause[FLOW_TEXT_SIZE];
+    char job[IMPULSE_JOB_SIZE];
+    bool source_heard;      /* impulses are being heard */
+    enum phase source_said; /* what the crew last entered */
+    bool release_possible;  /* the pre-watch is complete and nothing holds the start back */
+    char released_by[NOTE_NAME_SIZE];
+    uint32_t n_timers;
+    struct watch_timer timers[WATCH_MAX_TIMERS];
+    uint32_t n_people;
+    struct watch_person people[WATCH_MAX_PEOPLE];
+    uint32_t n_contacts; /* newest first */
+    struct watch_contact contacts[WATCH_MAX_CONTACTS];
+    uint32_t n_advice; /* newest first; the one in force for a station is its first with in_force */
+    struct watch_advice advice[WATCH_MAX_ADVICE];
+    uint32_t n_impulses; /* ours, of the job */
+};
+
+void watch_get_view(const struct watch *watch, struct watch_view *out);
+
+#endif
