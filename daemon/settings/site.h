@@ -1,0 +1,63 @@
+/* The site's settings: hushwatch.cfg. Everything a run needs to know, checked before anything starts. */
+#ifndef SETTINGS_SITE_H
+#define SETTINGS_SITE_H
+
+#include "base/status.h"
+#include "base/text.h"
+#include "flow.h"
+#include "level/calibration.h"
+#include "settings/reader.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define SITE_MAX_STREAMS 8
+#define SITE_MAX_STATIONS 8
+#define SITE_PATH_SIZE 512
+#define SITE_MAX_FILES 64
+
+struct channel_settings {
+    struct calibration calibration;
+    char serial[64];
+    double x_m, y_m,
+        z_m; /* from the source's reference point: ahead, to starboard, down; NAN where unknown */
+};
+
+struct stream_settings {
+    char name[64];
+    char input[32];            /* a name of the input table: "device", "recording", "pcm", "scene" */
+    double rate_hz;            /* 0: as the input says (recording, scene) */
+    uint32_t n_channels;       /* 0: as the input says */
+    char device[128];          /* device: name or number */
+    double latency_s;          /* device: at least 0.2 */
+    char format[8];            /* pcm: "s16", "s24", "s32", "f32" (little-endian) */
+    char path[SITE_PATH_SIZE]; /* pcm: a named pipe or "-"; scene: its file */
+    uint32_t n_files;
+    char files[SITE_MAX_FILES][SITE_PATH_SIZE]; /* recording: one or several, as one stream */
+    bool real_pace; /* recording, scene: at the pace of the clock, not as fast as possible */
+    struct channel_settings channels[FLOW_MAX_CHANNELS];
+};
+
+struct site {
+    char name[64];
+    char folder[SITE_PATH_SIZE]; /* of the settings file; relative paths start there */
+    char ledger[SITE_PATH_SIZE];
+    char permit[SITE_PATH_SIZE];
+    char calls[SITE_PATH_SIZE]; /* the folder of the call catalogue */
+    char address[64];           /* of the pages; loopback unless credentials are set */
+    uint32_t port;
+    uint32_t n_stations;
+    char stations[SITE_MAX_STATIONS][NOTE_NAME_SIZE]; /* crew stations that acknowledge for themselves */
+    uint32_t n_streams;
+    struct stream_settings streams[SITE_MAX_STREAMS];
+    double contact_gap_s;
+    double look_evidence, act_evidence, evidence_decay_s;
+    double sighting_log_spread;
+    double silence_s;
+    struct text effective; /* every setting with its value, one a line */
+};
+
+/* Reads and checks; adds to problems. STATUS_BAD_FORMAT when any was added. The caller destroys *out. */
+enum status site_load(const char *path, struct problems *problems, struct site *out);
+void site_destroy(struct site *site);
+
+#endif
