@@ -177,7 +177,7 @@ static bool text_fits(struct group_reader *group, const char *key, const config_
     return false;
 }
 
-bool group_text(struct group_reader *group, const char *key, bool required, char *value, size_t size)
+bool group_string(struct group_reader *group, const char *key, bool required, char *value, size_t size)
 {
     config_setting_t *member = ask(group, key, required);
     bool good = member && text_fits(group, key, member, value, size);

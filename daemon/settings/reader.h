@@ -52,7 +52,7 @@ struct group_reader reader_root(struct reader *reader);
 bool group_number(struct group_reader *group, const char *key, bool required, double min, double max,
                   double *value);
 bool group_flag(struct group_reader *group, const char *key, bool required, bool *value);
-bool group_text(struct group_reader *group, const char *key, bool required, char *value, size_t size);
+bool group_string(struct group_reader *group, const char *key, bool required, char *value, size_t size);
 /* One of n words; *value is its index. */
 bool group_word(struct group_reader *group, const char *key, bool required, const char *const *words,
                 unsigned n, unsigned *value);
