@@ -275,10 +275,29 @@ unsigned group_count(struct group_reader *group, const char *key, bool required)
 void group_at(struct group_reader *group, const char *key, unsigned i, struct group_reader *out)
 {
     config_setting_t *member = ask(group, key, READER_OPTIONAL);
-    char name[200];
+    char name[256];
     full_key(group, key, name, sizeof name);
     *out = (struct group_reader){.reader = group->reader, .setting = config_setting_get_elem(member, i)};
     snprintf(out->name, sizeof out->name, "%.100s[%u]", name, i);
+}
+
+bool group_member(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
+                  size_t value_size)
+{
+    if (!group->setting || i >= (unsigned)config_setting_length(group->setting))
+        return false;
+    const config_setting_t *member = config_setting_get_elem(group->setting, i);
+    double number;
+    snprintf(key, key_size, "%s", config_setting_name(member));
+    if (is_number(member, &number))
+        snprintf(value, value_size, "%.15g", number);
+    else if (config_setting_type(member) == CONFIG_TYPE_BOOL)
+        snprintf(value, value_size, "%s", config_setting_get_bool(member) ? "true" : "false");
+    else {
+        *value = '\0';
+        text_fits(group, key, member, value, value_size);
+    }
+    return true;
 }
 
 /* Edit distance (Levenshtein 1965), for the suggestion. */

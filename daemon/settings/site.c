@@ -1,0 +1,234 @@
+/* The site's settings; see site.h. */
+#include "settings/site.h"
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+static const char *const role_words[] = {"listen", "measure", "both"};
+static const char *const input_words[] = {"device", "recording", "pcm", "scene"};
+static const char *const format_words[] = {"s16", "s24", "s32", "f32"};
+static const char *const pace_words[] = {"real", "fast"};
+
+/* A path from the settings is relative to the settings file's folder. */
+static void resolve(const char *folder, char path[SITE_PATH_SIZE])
+{
+    if (*path == '\0' || *path == '/' || strcmp(path, "-") == 0)
+        return;
+    char whole[2 * SITE_PATH_SIZE];
+    snprintf(whole, sizeof whole, "%s/%s", folder, path);
+    snprintf(path, SITE_PATH_SIZE, "%.*s", SITE_PATH_SIZE - 1, whole);
+}
+
+static void read_path(struct group_reader *group, const char *folder, const char *key, bool required,
+                      char path[SITE_PATH_SIZE])
+{
+    if (group_text(group, key, required, path, SITE_PATH_SIZE))
+        resolve(folder, path);
+}
+
+static void read_channel(struct group_reader *group, struct channel_settings *channel)
+{
+    struct calibration *calibration = &channel->calibration;
+    unsigned role = calibration->role;
+    group_word(group, "role", READER_OPTIONAL, role_words, 3, &role);
+    calibration->role = (enum channel_role)role;
+    bool sensitivity =
+        group_number(group, "sensitivity_db", READER_OPTIONAL, -260, -100, &calibration->sensitivity_db);
+    group_number(group, "gain_db", READER_OPTIONAL, -60, 120, &calibration->gain_db);
+    bool volts = group_number(group, "full_scale_v", READER_OPTIONAL, 1e-6, 1000, &calibration->full_scale_v);
+    calibration->known = sensitivity && volts;
+    if (sensitivity != volts && group->setting)
+        group_problem(group, sensitivity ? "full_scale_v" : "sensitivity_db",
+                      "is missing; a calibrated channel has both sensitivity_db and full_scale_v");
+    group_number(group, "self_noise_db", READER_OPTIONAL, -60, 200, &calibration->self_noise_db);
+    group_text(group, "serial", READER_OPTIONAL, channel->serial, sizeof channel->serial);
+    double place[3];
+    unsigned n = group_numbers(group, "place_m", READER_OPTIONAL, -1e5, 1e5, place, 3);
+    if (n == 3) {
+        channel->x_m = place[0];
+        channel->y_m = place[1];
+        channel->z_m = place[2];
+    } else if (n > 0)
+        group_problem(group, "place_m", "has %u numbers; allowed: [ahead, starboard, down]", n);
+    group_done(group);
+}
+
+static void read_channels(struct group_reader *group, struct stream_settings *stream)
+{
+    for (unsigned i = 0; i < FLOW_MAX_CHANNELS; i++)
+        stream->channels[i] = (struct channel_settings){
+            .calibration = {.role = ROLE_BOTH, .self_noise_db = NAN}, .x_m = NAN, .y_m = NAN, .z_m = NAN};
+    unsigned n = group_count(group, "channels", READER_OPTIONAL);
+    if (n > FLOW_MAX_CHANNELS) {
+        group_problem(group, "channels", "lists %u; allowed: at most %d", n, FLOW_MAX_CHANNELS);
+        return;
+    }
+    for (unsigned i = 0; i < n; i++) {
+        struct group_reader item;
+        group_at(group, "channels", i, &item);
+        read_channel(&item, &stream->channels[i]);
+    }
+    if (n == 0)
+        return;
+    if (stream->n_channels != 0 && stream->n_channels != n)
+        group_problem(group, "channels", "lists %u channels, and channel_count is %u", n, stream->n_channels);
+    stream->n_channels = n;
+}
+
+static void read_files(struct group_reader *group, const char *folder, struct stream_settings *stream)
+{
+    char path[SITE_PATH_SIZE];
+    while (group_text_at(group, "files", stream->n_files, path, sizeof path)) {
+        if (stream->n_files == SITE_MAX_FILES) {
+            group_problem(group, "files", "lists too many; allowed: at most %d", SITE_MAX_FILES);
+            return;
+        }
+        resolve(folder, path);
+        memcpy(stream->files[stream->n_files++], path, sizeof path);
+    }
+}
+
+/* What the chosen kind of input cannot do without. */
+static void check_stream(struct group_reader *group, const struct stream_settings *stream)
+{
+    bool device = strcmp(stream->input, "device") == 0, pcm = strcmp(stream->input, "pcm") == 0;
+    if (device && *stream->device == '\0')
+        group_problem(group, "device", "is missing; a device input needs a name or a number");
+    if ((device || pcm) && stream->rate_hz == 0)
+        group_problem(group, "rate_hz", "is missing; a %s input needs it", stream->input);
+    if ((device || pcm) && stream->n_channels == 0)
+        group_problem(group, "channel_count", "is missing; a %s input needs it, or a list of channels",
+                      stream->input);
+    if (device && stream->rate_hz > 384000)
+        group_problem(group, "rate_hz",
+                      "is %g; allowed: up to 384000 for a device (above it, use a pcm input)",
+                      stream->rate_hz);
+    if (strcmp(stream->input, "recording") == 0 && stream->n_files == 0)
+        group_problem(group, "files", "is missing; a recording input needs at least one");
+    if (strcmp(stream->input, "scene") == 0 && *stream->path == '\0')
+        group_problem(group, "path", "is missing; a scene input needs its file");
+}
+
+static void read_stream(struct group_reader *group, const char *folder, struct stream_settings *stream)
+{
+    unsigned input = 0, format = 0, pace = 0;
+    double channels = 0;
+    stream->latency_s = 0.3;
+    group_text(group, "name", READER_OPTIONAL, stream->name, sizeof stream->name);
+    group_word(group, "input", READER_REQUIRED, input_words, 4, &input);
+    group_number(group, "rate_hz", READER_OPTIONAL, 8000, 1e6, &stream->rate_hz);
+    if (stream->rate_hz != floor(stream->rate_hz))
+        group_problem(group, "rate_hz", "is %g; allowed: whole numbers", stream->rate_hz);
+    group_number(group, "channel_count", READER_OPTIONAL, 1, FLOW_MAX_CHANNELS, &channels);
+    group_text(group, "device", READER_OPTIONAL, stream->device, sizeof stream->device);
+    group_number(group, "latency_s", READER_OPTIONAL, 0.2, 2, &stream->latency_s);
+    group_word(group, "format", READER_OPTIONAL, format_words, 4, &format);
+    read_path(group, folder, "path", READER_OPTIONAL, stream->path);
+    group_word(group, "pace", READER_OPTIONAL, pace_words, 2, &pace);
+    snprintf(stream->input, sizeof stream->input, "%s", input_words[input]);
+    snprintf(stream->format, sizeof stream->format, "%s", format_words[format]);
+    stream->n_channels = (uint32_t)channels;
+    stream->real_pace = pace == 0;
+    read_files(group, folder, stream);
+    read_channels(group, stream);
+    check_stream(group, stream);
+    group_done(group);
+}
+
+static void read_streams(struct group_reader *root, struct site *site)
+{
+    unsigned n = group_count(root, "streams", READER_REQUIRED);
+    if (n > SITE_MAX_STREAMS || n == 0) {
+        group_problem(root, "streams", "lists %u; allowed: 1 to %d", n, SITE_MAX_STREAMS);
+        return;
+    }
+    for (unsigned i = 0; i < n; i++) {
+        struct group_reader item;
+        group_at(root, "streams", i, &item);
+        snprintf(site->streams[i].name, sizeof site->streams[i].name, "stream %u", i + 1);
+        read_stream(&item, site->folder, &site->streams[i]);
+    }
+    site->n_streams = n;
+}
+
+static void read_pages(struct group_reader *root, struct site *site)
+{
+    struct group_reader pages;
+    double port = 8470;
+    group_child(root, "pages", READER_OPTIONAL, &pages);
+    group_text(&pages, "address", READER_OPTIONAL, site->address, sizeof site->address);
+    group_number(&pages, "port", READER_OPTIONAL, 0, 65535, &port);
+    site->port = (uint32_t)port;
+    if (strcmp(site->address, "127.0.0.1") != 0 && strcmp(site->address, "::1") != 0 &&
+        strcmp(site->address, "localhost") != 0)
+        group_problem(&pages, "address",
+                      "is \"%s\"; allowed: a loopback address (127.0.0.1, ::1), for the pages "
+                      "have no credentials",
+                      site->address);
+    while (
+        site->n_stations < SITE_MAX_STATIONS &&
+        group_text_at(&pages, "stations", site->n_stations, site->stations[site->n_stations], NOTE_NAME_SIZE))
+        site->n_stations++;
+    if (site->n_stations == 0)
+        snprintf(site->stations[site->n_stations++], NOTE_NAME_SIZE, "crew");
+    group_done(&pages);
+}
+
+static void read_evidence(struct group_reader *root, struct site *site)
+{
+    struct group_reader contact;
+    group_child(root, "contact", READER_OPTIONAL, &contact);
+    group_number(&contact, "gap_s", READER_OPTIONAL, 1, 86400, &site->contact_gap_s);
+    group_number(&contact, "look_evidence", READER_OPTIONAL, 0, 100, &site->look_evidence);
+    group_number(&contact, "act_evidence", READER_OPTIONAL, 0, 100, &site->act_evidence);
+    group_number(&contact, "evidence_decay_s", READER_OPTIONAL, 1, 86400, &site->evidence_decay_s);
+    group_number(&contact, "sighting_log_spread", READER_OPTIONAL, 0.001, 2, &site->sighting_log_spread);
+    if (site->act_evidence < site->look_evidence)
+        group_problem(&contact, "act_evidence", "is %g; allowed: at least look_evidence, %g",
+                      site->act_evidence, site->look_evidence);
+    group_done(&contact);
+}
+
+static void set_defaults(const char *path, struct site *site)
+{
+    *site = (struct site){.contact_gap_s = 300,
+                          .look_evidence = 1.0,
+                          .act_evidence = 3.0,
+                          .evidence_decay_s = 180,
+                          .sighting_log_spread = 0.15,
+                          .silence_s = 120,
+                          .address = "127.0.0.1"};
+    const char *slash = strrchr(path, '/');
+    if (slash)
+        snprintf(site->folder, sizeof site->folder, "%.*s", (int)(slash == path ? 1 : slash - path), path);
+    else
+        snprintf(site->folder, sizeof site->folder, ".");
+}
+
+enum status site_load(const char *path, struct problems *problems, struct site *out)
+{
+    struct reader reader;
+    unsigned before = problems->count;
+    set_defaults(path, out);
+    if (reader_open(&reader, path, problems, &out->effective) == STATUS_OK) {
+        struct group_reader root = reader_root(&reader);
+        group_text(&root, "name", READER_REQUIRED, out->name, sizeof out->name);
+        read_path(&root, out->folder, "ledger", READER_REQUIRED, out->ledger);
+        read_path(&root, out->folder, "permit", READER_REQUIRED, out->permit);
+        read_path(&root, out->folder, "calls", READER_REQUIRED, out->calls);
+        group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
+        read_pages(&root, out);
+        read_evidence(&root, out);
+        read_streams(&root, out);
+        group_done(&root);
+    }
+    reader_close(&reader);
+    return problems->count == before ? STATUS_OK : STATUS_BAD_FORMAT;
+}
+
+void site_destroy(struct site *site)
+{
+    if (site)
+        text_destroy(&site->effective);
+}
