@@ -19,13 +19,13 @@ static void read_one(struct group_reader *group, struct timed_note *out)
     char kind[NOTE_NAME_SIZE] = "";
     enum note_kind note_kind = NOTE_REMARK;
     group_number(group, "at_s", READER_REQUIRED, 0, 1e9, &out->at_s);
-    if (group_text(group, "kind", READER_REQUIRED, kind, sizeof kind) &&
+    if (group_string(group, "kind", READER_REQUIRED, kind, sizeof kind) &&
         !note_kind_from_text(kind, &note_kind))
         group_problem(group, "kind", "is \"%s\", which is no kind of note", kind);
     note_reset(&out->note, note_kind);
     unsigned before = group->reader->problems->count;
     char key[NOTE_NAME_SIZE], value[NOTE_TEXT_SIZE];
-    for (unsigned i = 0; group_member(group, i, key, sizeof key, value, sizeof value); i++)
+    for (unsigned i = 0; group_pair(group, i, key, sizeof key, value, sizeof value); i++)
         if (strcmp(key, "at_s") != 0 && strcmp(key, "kind") != 0)
             set_field(group, &out->note, key, value);
     const char *missing = NULL;

@@ -281,8 +281,8 @@ void group_at(struct group_reader *group, const char *key, unsigned i, struct gr
     snprintf(out->name, sizeof out->name, "%.100s[%u]", name, i);
 }
 
-bool group_member(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
-                  size_t value_size)
+bool group_pair(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
+                size_t value_size)
 {
     if (!group->setting || i >= (unsigned)config_setting_length(group->setting))
         return false;

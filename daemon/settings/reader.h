@@ -70,8 +70,8 @@ void group_at(struct group_reader *group, const char *key, unsigned i, struct gr
 
 /* The i-th member of a group whose keys are not known beforehand, its value as text (true and false for
  * flags); false after the last. Members read so need no group_done. */
-bool group_member(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
-                  size_t value_size);
+bool group_pair(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
+                size_t value_size);
 
 /* A problem about a key of this group, at the key's line. */
 void group_problem(struct group_reader *group, const char *key, const char *format, ...)

@@ -23,7 +23,7 @@ static void resolve(const char *folder, char path[SITE_PATH_SIZE])
 static void read_path(struct group_reader *group, const char *folder, const char *key, bool required,
                       char path[SITE_PATH_SIZE])
 {
-    if (group_text(group, key, required, path, SITE_PATH_SIZE))
+    if (group_string(group, key, required, path, SITE_PATH_SIZE))
         resolve(folder, path);
 }
 
@@ -42,7 +42,7 @@ static void read_channel(struct group_reader *group, struct channel_settings *ch
         group_problem(group, sensitivity ? "full_scale_v" : "sensitivity_db",
                       "is missing; a calibrated channel has both sensitivity_db and full_scale_v");
     group_number(group, "self_noise_db", READER_OPTIONAL, -60, 200, &calibration->self_noise_db);
-    group_text(group, "serial", READER_OPTIONAL, channel->serial, sizeof channel->serial);
+    group_string(group, "serial", READER_OPTIONAL, channel->serial, sizeof channel->serial);
     double place[3];
     unsigned n = group_numbers(group, "place_m", READER_OPTIONAL, -1e5, 1e5, place, 3);
     if (n == 3) {
@@ -115,13 +115,13 @@ static void read_stream(struct group_reader *group, const char *folder, struct s
     unsigned input = 0, format = 0, pace = 0;
     double channels = 0;
     stream->latency_s = 0.3;
-    group_text(group, "name", READER_OPTIONAL, stream->name, sizeof stream->name);
+    group_string(group, "name", READER_OPTIONAL, stream->name, sizeof stream->name);
     group_word(group, "input", READER_REQUIRED, input_words, 4, &input);
     group_number(group, "rate_hz", READER_OPTIONAL, 8000, 1e6, &stream->rate_hz);
     if (stream->rate_hz != floor(stream->rate_hz))
         group_problem(group, "rate_hz", "is %g; allowed: whole numbers", stream->rate_hz);
     group_number(group, "channel_count", READER_OPTIONAL, 1, FLOW_MAX_CHANNELS, &channels);
-    group_text(group, "device", READER_OPTIONAL, stream->device, sizeof stream->device);
+    group_string(group, "device", READER_OPTIONAL, stream->device, sizeof stream->device);
     group_number(group, "latency_s", READER_OPTIONAL, 0.2, 2, &stream->latency_s);
     group_word(group, "format", READER_OPTIONAL, format_words, 4, &format);
     read_path(group, folder, "path", READER_OPTIONAL, stream->path);
@@ -157,7 +157,7 @@ static void read_pages(struct group_reader *root, struct site *site)
     struct group_reader pages;
     double port = 8470;
     group_child(root, "pages", READER_OPTIONAL, &pages);
-    group_text(&pages, "address", READER_OPTIONAL, site->address, sizeof site->address);
+    group_string(&pages, "address", READER_OPTIONAL, site->address, sizeof site->address);
     group_number(&pages, "port", READER_OPTIONAL, 0, 65535, &port);
     site->port = (uint32_t)port;
     if (strcmp(site->address, "127.0.0.1") != 0 && strcmp(site->address, "::1") != 0 &&
@@ -213,7 +213,7 @@ enum status site_load(const char *path, struct problems *problems, struct site *
     set_defaults(path, out);
     if (reader_open(&reader, path, problems, &out->effective) == STATUS_OK) {
         struct group_reader root = reader_root(&reader);
-        group_text(&root, "name", READER_REQUIRED, out->name, sizeof out->name);
+        group_string(&root, "name", READER_REQUIRED, out->name, sizeof out->name);
         read_path(&root, out->folder, "ledger", READER_REQUIRED, out->ledger);
         read_path(&root, out->folder, "permit", READER_REQUIRED, out->permit);
         read_path(&root, out->folder, "calls", READER_REQUIRED, out->calls);
