@@ -1,6 +1,6 @@
 /* Low-pass and decimation of one channel, streaming: a chain of FIR stages (Kaiser window method, Oppenheim
- * and Schafer, "Discrete-Time Signal Processing", section 7.6), at least 80 dB of anti-alias attenuation,
- * pass band flat within 0.05 dB up to 0.4 of the output rate. */
+ * and Schafer, "Discrete-Time Signal Processing", section 7.6), pass band flat within 0.05 dB up to 0.4
+ * of the output rate, and at least 80 dB down what would alias into that pass band. */
 #ifndef DSP_DECIMATE_H
 #define DSP_DECIMATE_H
 
