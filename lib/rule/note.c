@@ -1,0 +1,270 @@
+/* Notes: the one table of fields with what each allows, and what each kind needs. */
+#include "rule/note.h"
+#include "base/round.h"
+#include "level/impulse.h"
+#include <errno.h>
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+static const char *const kind_words[NOTE_KIND_COUNT] = {
+    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off", [NOTE_SIGHTING] = "sighting",
+    [NOTE_DISTANCE] = "distance",   [NOTE_VERDICT] = "verdict",   [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",           [NOTE_WEATHER] = "weather",
+    [NOTE_MARK] = "mark",           [NOTE_REMARK] = "remark",     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
+};
+
+enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
+
+struct field {
+    const char *name;
+    enum field_form form;
+    size_t offset, size;      /* of the member; size of texts */
+    double min, max;          /* of numbers */
+    int decimals;             /* of numbers: how they are rounded */
+    const char *const *words; /* of FIELD_WORD, ended by NULL */
+    const char *allowed;      /* in words, for people */
+};
+
+static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
+static const char *const verdict_words[] = {"confirm", "dismiss", "left", NULL};
+static const char *const answer_words[] = {"seen", "passed", "stopped", "declined", "open", "close", NULL};
+static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
+                                           "vibro", "drilling",   "line turn",  "test", NULL};
+
+#define TEXT(member)                                                                                         \
+    .name = #member, .form = FIELD_TEXT, .offset = offsetof(struct note, member),                            \
+    .size = sizeof(((struct note *)0)->member)
+#define WORD(member, list)                                                                                   \
+    .name = #member, .form = FIELD_WORD, .offset = offsetof(struct note, member),                            \
+    .size = sizeof(((struct note *)0)->member), .words = list
+#define NUMBER(member, low, high, places)                                                                    \
+    .name = #member, .form = FIELD_NUMBER, .offset = offsetof(struct note, member), .min = low, .max = high, \
+    .decimals = places
+#define OTHER(member, kind) .name = #member, .form = kind, .offset = offsetof(struct note, member)
+
+#define NAME_ALLOWED "at most 63 bytes, no control characters"
+
+static const struct field fields[] = {
+    {TEXT(person), .allowed = NAME_ALLOWED},
+    {WORD(watch, watch_words), .allowed = "visual, acoustic, crew"},
+    {TEXT(station), .allowed = NAME_ALLOWED},
+    {TEXT(species), .allowed = NAME_ALLOWED},
+    {WORD(verdict, verdict_words), .allowed = "confirm, dismiss, left"},
+    {WORD(answer, answer_words),
+     .allowed = "seen, passed, stopped, declined (acknowledgement); open, close (job)"},
+    {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
+    {.name = "job",
+     .form = FIELD_TEXT,
+     .offset = offsetof(struct note, job),
+     .size = IMPULSE_JOB_SIZE,
+     .allowed = "at most 31 bytes, no control characters"},
+    {WORD(source_state, source_words),
+     .allowed = "off, soft start, full power, hold, reduced, stopped, vibro, drilling, line turn, test"},
+    {TEXT(text), .allowed = "at most 255 bytes, no control characters"},
+    {OTHER(group, FIELD_GROUP),
+     .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
+                "sirenian, sea otter, turtle"},
+    {OTHER(contact, FIELD_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
+    {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
+    {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
+    {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
+    {NUMBER(visibility_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {OTHER(calf, FIELD_FLAG), .allowed = "true, false"},
+    {OTHER(leaving, FIELD_FLAG), .allowed = "true, false"},
+    {OTHER(occurred_ns, FIELD_TIME), .allowed = "watch time in nanoseconds, not before 0"},
+};
+
+void note_reset(struct note *note, enum note_kind kind)
+{
+    *note = (struct note){.kind = kind,
+                          .group = GROUP_UNKNOWN,
+                          .number = NAN,
+                          .distance_m = NAN,
+                          .bearing_deg = NAN,
+                          .sea_state = NAN,
+                          .visibility_m = NAN};
+}
+
+static enum status set_text(const struct field *field, const char *value, char *out)
+{
+    size_t length = strlen(value);
+    if (length >= field->size)
+        return STATUS_OUT_OF_RANGE;
+    for (const char *c = value; *c; c++)
+        if ((unsigned char)*c < 0x20 || *c == 0x7f)
+            return STATUS_BAD_FORMAT;
+    memcpy(out, value, length + 1);
+    return STATUS_OK;
+}
+
+static enum status set_word(const struct field *field, const char *value, char *out)
+{
+    for (const char *const *word = field->words; *word; word++)
+        if (strcmp(value, *word) == 0)
+            return set_text(field, value, out);
+    return STATUS_OUT_OF_RANGE;
+}
+
+/* A plain decimal number and nothing else: no hexadecimal, no "nan", no spaces before it. */
+static enum status read_number(const char *value, double min, double max, double *out)
+{
+    if (*value == '\0' || value[strspn(value, "0123456789.-+eE")] != '\0')
+        return STATUS_BAD_FORMAT;
+    char *end;
+    double number = strtod(value, &end);
+    if (*end != '\0')
+        return STATUS_BAD_FORMAT;
+    if (!(number >= min && number <= max))
+        return STATUS_OUT_OF_RANGE;
+    *out = number;
+    return STATUS_OK;
+}
+
+static enum status read_whole(const char *value, int64_t min, int64_t max, int64_t *out)
+{
+    if (*value == '\0' || value[strspn(value, "0123456789")] != '\0')
+        return STATUS_BAD_FORMAT;
+    errno = 0;
+    long long number = strtoll(value, NULL, 10);
+    if (errno != 0 || number < min || number > max)
+        return STATUS_OUT_OF_RANGE;
+    *out = number;
+    return STATUS_OK;
+}
+
+static enum status set_number(const struct field *field, const char *value, double *out)
+{
+    double number;
+    enum status status = read_number(value, field->min, field->max, &number);
+    if (status == STATUS_OK)
+        *out = round_decimals(number, field->decimals);
+    return status;
+}
+
+static enum status set_flag(const char *value, bool *out)
+{
+    bool yes = strcmp(value, "true") == 0;
+    if (!yes && strcmp(value, "false") != 0)
+        return STATUS_BAD_FORMAT;
+    *out = yes;
+    return STATUS_OK;
+}
+
+static enum status set_field(const struct field *field, const char *value, struct note *note)
+{
+    void *member = (char *)note + field->offset;
+    int64_t whole;
+    enum status status;
+    switch (field->form) {
+    case FIELD_TEXT:
+        return set_text(field, value, member);
+    case FIELD_WORD:
+        return set_word(field, value, member);
+    case FIELD_GROUP:
+        return group_from_text(value, &note->group) ? STATUS_OK : STATUS_OUT_OF_RANGE;
+    case FIELD_WHOLE:
+        status = read_whole(value, (int64_t)field->min, (int64_t)field->max, &whole);
+        if (status == STATUS_OK)
+            note->contact = (uint32_t)whole;
+        return status;
+    case FIELD_NUMBER:
+        return set_number(field, value, member);
+    case FIELD_FLAG:
+        return set_flag(value, member);
+    case FIELD_TIME:
+        status = read_whole(value, 0, INT64_MAX, &whole);
+        if (status == STATUS_OK)
+            note->occurred_ns = whole;
+        return status;
+    }
+    return STATUS_BUG;
+}
+
+enum status note_set(struct note *note, const char *field, const char *value, const char **out_allowed)
+{
+    for (size_t i = 0; i < sizeof fields / sizeof fields[0]; i++)
+        if (strcmp(field, fields[i].name) == 0) {
+            enum status status = set_field(&fields[i], value, note);
+            if (status != STATUS_OK && out_allowed)
+                *out_allowed = fields[i].allowed;
+            return status;
+        }
+    return STATUS_NOT_FOUND;
+}
+
+static const char *missing_of_answer(const struct note *note)
+{
+    bool of_job = strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0;
+    bool good = *note->answer && of_job == (note->kind == NOTE_JOB);
+    return good ? NULL : "answer";
+}
+
+/* The first field that the kind needs and the note has not; NULL when it is complete. */
+static const char *missing_of(const struct note *note)
+{
+    bool person = *note->person != '\0';
+    switch (note->kind) {
+    case NOTE_SIGN_ON:
+        if (person && *note->watch && strcmp(note->watch, "crew") == 0 && !*note->station)
+            return "station";
+        return !person ? "person" : !*note->watch ? "watch" : NULL;
+    case NOTE_SIGN_OFF:
+        return !person ? "person" : !*note->watch ? "watch" : NULL;
+    case NOTE_SIGHTING:
+    case NOTE_RELEASE:
+        return !person ? "person" : NULL;
+    case NOTE_DISTANCE:
+        return !person                                     ? "person"
+               : !note->contact                            ? "contact"
+               : isnan(note->distance_m) && !note->leaving ? "distance_m"
+                                                           : NULL;
+    case NOTE_VERDICT:
+        return !person           ? "person"
+               : !note->contact  ? "contact"
+               : !*note->verdict ? "verdict"
+               : !*note->text    ? "text"
+                                 : NULL;
+    case NOTE_ACKNOWLEDGEMENT:
+        return !person           ? "person"
+               : !*note->station ? "station"
+               : !*note->advice  ? "advice"
+                                 : missing_of_answer(note);
+    case NOTE_SOURCE:
+        return !*note->source_state ? "source_state" : NULL;
+    case NOTE_JOB:
+        return !*note->job ? "job" : missing_of_answer(note);
+    case NOTE_WEATHER:
+        return isnan(note->sea_state) && isnan(note->visibility_m) ? "sea_state" : NULL;
+    case NOTE_MARK:
+    case NOTE_REMARK:
+        return !*note->text ? "text" : NULL;
+    case NOTE_KIND_COUNT:
+        break;
+    }
+    return "kind";
+}
+
+enum status note_check(const struct note *note, const char **out_missing)
+{
+    const char *missing = missing_of(note);
+    if (missing && out_missing)
+        *out_missing = missing;
+    return missing ? STATUS_BAD_FORMAT : STATUS_OK;
+}
+
+const char *note_kind_text(enum note_kind kind)
+{
+    return (unsigned)kind < NOTE_KIND_COUNT ? kind_words[kind] : "unknown";
+}
+
+bool note_kind_from_text(const char *text, enum note_kind *out)
+{
+    for (unsigned i = 0; i < NOTE_KIND_COUNT; i++)
+        if (strcmp(text, kind_words[i]) == 0) {
+            *out = (enum note_kind)i;
+            return true;
+        }
+    return false;
+}
