@@ -13,6 +13,8 @@
 #define PERMIT_MAX_ZONES 8
 #define PERMIT_MAX_CLEARANCES 8
 #define PERMIT_MAX_VALUES 96
+#define PERMIT_GROUP_BIT(group) (UINT32_C(1) << (unsigned)(group))
+#define PERMIT_ALL_GROUPS (PERMIT_GROUP_BIT(GROUP_COUNT) - 1)
 
 enum permit_activity { ACTIVITY_PILING, ACTIVITY_SEISMIC, ACTIVITY_EXPLOSIVES };
 enum zone_origin { ORIGIN_PILE, ORIGIN_ARRAY_CENTRE, ORIGIN_ARRAY_EDGE, ORIGIN_CHARGE, ORIGIN_VESSEL };
@@ -92,12 +94,18 @@ struct permit {
 };
 
 /* The first thing that makes the permit unusable (no zone, a group without unknown policy, a timer without
- * bound,
- * ...): STATUS_OUT_OF_RANGE and a sentence in out_problem; call with n = 0, 1, 2 ... for the n-th problem;
- * STATUS_OK when there are no more. */
+ * bound ...): STATUS_OUT_OF_RANGE and a sentence in out_problem; call with n = 0, 1, 2 ... for the n-th
+ * problem; STATUS_OK when there are no more. */
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE]);
 
+/* The n-th value that nobody has checked against the document (its mark is a memory), NULL after the last. */
+const struct permit_value *permit_unverified(const struct permit *permit, uint32_t n);
+
+/* Words of the file and of pages; never NULL. */
 const char *permit_action_text(enum permit_action action);
-const char *permit_mark_text(enum value_mark mark); /* "read", "secondary", "memory, high" ... */
+const char *permit_activity_text(enum permit_activity activity); /* "piling", "seismic", "explosives" */
+const char *permit_origin_text(enum zone_origin origin);         /* "pile", "array centre" ... */
+const char *permit_unknown_text(enum unknown_policy policy);     /* "inside", "ask observer", "ignore" */
+const char *permit_mark_text(enum value_mark mark);              /* "read", "secondary", "memory, high" ... */
 
 #endif
