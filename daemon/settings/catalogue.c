@@ -1,0 +1,168 @@
+/* The call catalogue's loader; see catalogue.h. docs/settings.md lists the keys with their meaning. */
+#include "settings/catalogue.h"
+#include <dirent.h>
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define PATH_SIZE 1024
+#define FREE_SWEEP_HZ 1e6 /* stands for "no limit" in a file */
+
+static const char *const forms[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train"};
+
+/* low < high, at the higher one's key. */
+static void check_order(struct group_reader *group, double low, double high, const char *low_key,
+                        const char *high_key)
+{
+    if (!(low < high))
+        group_problem(group, high_key, "is %g; allowed: more than %s, which is %g", high, low_key, low);
+}
+
+static void read_tone(struct group_reader *group, struct tone_shape *tone)
+{
+    tone->min_extent_hz = 0;
+    tone->max_extent_hz = FREE_SWEEP_HZ;
+    tone->min_sweep_hz = -FREE_SWEEP_HZ;
+    tone->max_sweep_hz = FREE_SWEEP_HZ;
+    group_number(group, "window_s", READER_REQUIRED, 0.002, 2, &tone->window_s);
+    group_number(group, "min_snr_db", READER_REQUIRED, 0, 60, &tone->min_snr_db);
+    group_number(group, "min_s", READER_REQUIRED, 0.02, 60, &tone->min_s);
+    group_number(group, "max_s", READER_REQUIRED, 0.05, 600, &tone->max_s);
+    group_number(group, "min_extent_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->min_extent_hz);
+    group_number(group, "max_extent_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->max_extent_hz);
+    group_number(group, "min_sweep_hz", READER_OPTIONAL, -FREE_SWEEP_HZ, FREE_SWEEP_HZ, &tone->min_sweep_hz);
+    group_number(group, "max_sweep_hz", READER_OPTIONAL, -FREE_SWEEP_HZ, FREE_SWEEP_HZ, &tone->max_sweep_hz);
+    group_number(group, "max_rate_hz_s", READER_REQUIRED, 1, FREE_SWEEP_HZ, &tone->max_rate_hz_s);
+    check_order(group, tone->min_s, tone->max_s, "min_s", "max_s");
+    check_order(group, tone->min_extent_hz, tone->max_extent_hz, "min_extent_hz", "max_extent_hz");
+    check_order(group, tone->min_sweep_hz, tone->max_sweep_hz, "min_sweep_hz", "max_sweep_hz");
+    if (tone->min_sweep_hz <= -FREE_SWEEP_HZ)
+        tone->min_sweep_hz = -INFINITY;
+    if (tone->max_sweep_hz >= FREE_SWEEP_HZ)
+        tone->max_sweep_hz = INFINITY;
+    if (tone->max_extent_hz >= FREE_SWEEP_HZ)
+        tone->max_extent_hz = INFINITY;
+}
+
+static void read_train(struct group_reader *group, struct train_shape *train)
+{
+    double min_pulses = 0;
+    group_number(group, "pulse_s", READER_REQUIRED, 1e-6, 5, &train->pulse_s);
+    group_number(group, "max_pulse_s", READER_REQUIRED, 1e-6, 10, &train->max_pulse_s);
+    group_number(group, "min_snr_db", READER_REQUIRED, 0, 60, &train->min_snr_db);
+    group_number(group, "min_interval_s", READER_REQUIRED, 0.0005, 100, &train->min_interval_s);
+    group_number(group, "max_interval_s", READER_REQUIRED, 0.001, 100, &train->max_interval_s);
+    group_number(group, "max_jitter", READER_REQUIRED, 0, 5, &train->max_jitter);
+    group_number(group, "min_jitter", READER_OPTIONAL, 0, 5, &train->min_jitter);
+    group_number(group, "min_pulses", READER_REQUIRED, 2, 1000, &min_pulses);
+    group_number(group, "guard_low_hz", READER_OPTIONAL, 0, 1e6, &train->guard_low_hz);
+    group_number(group, "guard_high_hz", READER_OPTIONAL, 0, 1e6, &train->guard_high_hz);
+    group_number(group, "min_guard_db", READER_OPTIONAL, -60, 80, &train->min_guard_db);
+    train->min_pulses = (uint32_t)min_pulses;
+    check_order(group, train->pulse_s, train->max_pulse_s, "pulse_s", "max_pulse_s");
+    check_order(group, train->min_interval_s, train->max_interval_s, "min_interval_s", "max_interval_s");
+    check_order(group, train->min_jitter, train->max_jitter, "min_jitter", "max_jitter");
+    if (train->guard_low_hz != 0 || train->guard_high_hz != 0)
+        check_order(group, train->guard_low_hz, train->guard_high_hz, "guard_low_hz", "guard_high_hz");
+}
+
+static void read_class(struct group_reader *root, struct call_class *class)
+{
+    const char *groups[GROUP_COUNT];
+    unsigned group = GROUP_UNKNOWN, form = CALL_TONE;
+    for (unsigned i = 0; i < GROUP_COUNT; i++)
+        groups[i] = group_text((enum group)i);
+    class->animal = true;
+    if (group_string(root, "name", READER_REQUIRED, class->name, sizeof class->name) && !*class->name)
+        group_problem(root, "name", "is empty; allowed: 1 to %d bytes", CALL_CLASS_SIZE - 1);
+    group_word(root, "group", READER_REQUIRED, groups, GROUP_COUNT, &group);
+    bool has_form = group_word(root, "form", READER_REQUIRED, forms, 2, &form);
+    class->group = (enum group)group;
+    class->form = (enum call_form)form;
+    group_flag(root, "animal", READER_OPTIONAL, &class->animal);
+    group_number(root, "low_hz", READER_REQUIRED, 1, 5e5, &class->low_hz);
+    group_number(root, "high_hz", READER_REQUIRED, 1, 5e5, &class->high_hz);
+    check_order(root, class->low_hz, class->high_hz, "low_hz", "high_hz");
+    group_number(root, "natural_delay_s", READER_REQUIRED, 0, 120, &class->natural_delay_s);
+    group_number(root, "false_per_hour", READER_REQUIRED, 0, 100, &class->false_per_hour);
+    group_number(root, "certainty", READER_REQUIRED, 0, 1, &class->certainty);
+    group_number(root, "evidence", READER_REQUIRED, -20, 20, &class->evidence);
+    group_string(root, "source", READER_REQUIRED, class->source, sizeof class->source);
+    struct group_reader shape;
+    if (has_form && group_child(root, forms[form], READER_REQUIRED, &shape)) {
+        if (form == CALL_TONE)
+            read_tone(&shape, &class->tone);
+        else
+            read_train(&shape, &class->train);
+        group_done(&shape);
+    }
+    if (has_form)
+        group_done(root);
+}
+
+static void load_class(const char *path, struct problems *problems, struct text *effective,
+                       struct catalogue *catalogue)
+{
+    struct reader reader;
+    if (catalogue->n_classes == CATALOGUE_MAX_CLASSES) {
+        problems_add(problems, path, 0, "", "is one class too many; allowed: %d", CATALOGUE_MAX_CLASSES);
+        return;
+    }
+    if (effective)
+        text_format(effective, "# %s\n", path);
+    if (reader_open(&reader, path, problems, effective) == STATUS_OK) {
+        struct call_class *class = &catalogue->classes[catalogue->n_classes];
+        struct group_reader root = reader_root(&reader);
+        read_class(&root, class);
+        for (uint32_t i = 0; i < catalogue->n_classes; i++)
+            if (*class->name && strcmp(class->name, catalogue->classes[i].name) == 0)
+                group_problem(&root, "name", "is \"%s\", which another file has; allowed: a name of its own",
+                              class->name);
+        catalogue->n_classes++;
+    }
+    reader_close(&reader);
+}
+
+static int is_class_file(const struct dirent *entry)
+{
+    size_t n = strlen(entry->d_name);
+    return entry->d_name[0] != '.' && n > 4 && strcmp(entry->d_name + n - 4, ".cfg") == 0;
+}
+
+/* By bytes: the order must not depend on the language of the machine. */
+static int by_name(const struct dirent **a, const struct dirent **b)
+{
+    return strcmp((*a)->d_name, (*b)->d_name);
+}
+
+enum status catalogue_load(const char *folder, struct problems *problems, struct text *effective,
+                           struct catalogue *out)
+{
+    struct dirent **entries = NULL;
+    unsigned before = problems->count;
+    int n = scandir(folder, &entries, is_class_file, by_name);
+    if (n <= 0) {
+        free(entries);
+        problems_add(problems, folder, 0, "", n < 0 ? "cannot be read (%m)" : "holds no *.cfg file");
+        return STATUS_NOT_FOUND;
+    }
+    struct catalogue *catalogue = calloc(1, sizeof *catalogue);
+    for (int i = 0; i < n; i++) {
+        char path[PATH_SIZE];
+        int length = snprintf(path, sizeof path, "%s/%s", folder, entries[i]->d_name);
+        if (catalogue && length >= (int)sizeof path)
+            problems_add(problems, folder, 0, "", "has too long a path; allowed: %d bytes", PATH_SIZE - 1);
+        else if (catalogue)
+            load_class(path, problems, effective, catalogue);
+        free(entries[i]);
+    }
+    free(entries);
+    if (!catalogue)
+        return STATUS_NO_MEMORY;
+    enum status status = problems->count > before ? STATUS_BAD_FORMAT : STATUS_OK;
+    if (status == STATUS_OK)
+        *out = *catalogue;
+    free(catalogue);
+    return status;
+}
