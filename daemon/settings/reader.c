@@ -64,7 +64,8 @@ struct group_reader reader_root(struct reader *reader)
 
 static void full_key(const struct group_reader *group, const char *key, char *out, size_t size)
 {
-    snprintf(out, size, "%s%s%s", group->name, *group->name ? "." : "", key);
+    if (snprintf(out, size, "%s%s%s", group->name, *group->name ? "." : "", key) >= (int)size)
+        out[size - 2] = '~'; /* cut, and seen to be cut */
 }
 
 void group_problem(struct group_reader *group, const char *key, const char *format, ...)

@@ -13,6 +13,26 @@
 #include "level/calibration.h"
 #include <stdint.h>
 
+#define COLUMN_ROWS 24
+#define COLUMN_BANDS 3
+
+/* A quarter of a second of one band for the strips of sound: loudness in rows of equal ratio, lowest first.
+ */
+struct column {
+    uint32_t band;               /* 0 low, 1 middle, 2 high */
+    int64_t start_ns;            /* watch time */
+    double low_hz, high_hz;      /* edges of the band */
+    uint8_t levels[COLUMN_ROWS]; /* spectral density in steps of 0.5 dB; 0 is COLUMN_FLOOR_DB or less */
+};
+
+#define COLUMN_STEP_DB 0.5
+#define COLUMN_FLOOR_DB 10.0 /* dB re 1 uPa2/Hz; dB re full scale less 150 on an uncalibrated channel */
+
+struct column_sink {
+    void (*take)(void *context, const struct column *column);
+    void *context;
+};
+
 struct listen_setup {
     uint32_t stream;     /* from 1 */
     uint32_t run;        /* from 1 */
@@ -21,6 +41,7 @@ struct listen_setup {
     struct time_map map; /* from the stream's frames to watch time */
     struct calibration calibration[FLOW_MAX_CHANNELS];
     const struct catalogue *catalogue; /* borrowed for the life of the object */
+    struct column_sink columns; /* the strips of the stream's first listening channel; take may be NULL */
 };
 
 struct listen;

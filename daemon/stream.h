@@ -1,0 +1,63 @@
+/* One stream's thread: input -> blocks -> listen -> merge. */
+#ifndef STREAM_H
+#define STREAM_H
+
+#include "base/status.h"
+#include "call/catalogue.h"
+#include "input/input.h"
+#include "listen/listen.h"
+#include "merge.h"
+#include "settings/site.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+struct stream;
+
+/* What a stream's thread tells besides events; called from that thread. */
+struct stream_listener {
+    void (*column)(void *context, uint32_t stream, const struct column *column);
+    void (*clock)(void *context, uint32_t stream, const struct time_map *map, int64_t change_ns);
+    void *context;
+};
+
+struct stream_setup {
+    uint32_t number;                        /* from 1 */
+    uint32_t run;                           /* from 1 */
+    const struct stream_settings *settings; /* borrowed */
+    const struct catalogue *catalogue;      /* borrowed */
+    struct stream_listener listener;        /* functions may be NULL */
+};
+
+/* Opens the input, which says its facts; adds problems and gives the input's status when it cannot. */
+enum status stream_open(const struct stream_setup *setup, struct problems *problems, struct stream **out);
+const struct input_facts *stream_get_facts(const struct stream *stream);
+
+/* Puts together what hears it, whose first frame is at watch time start_ns (a live stream: whatever comes
+ * first is at the present watch time), then starts the thread. skip_s: where a recording or scene goes on
+ * after a restart. */
+enum status stream_start(struct stream *stream, struct merge *merge, int64_t start_ns, double skip_s);
+
+/* The next note of the input's own timetable, with known_ns set; STATUS_END when there is none. Before start
+ * only. */
+enum status stream_next_note(struct stream *stream, double *out_at_s, struct note *out);
+
+/* Ends the thread (at most 0.3 s) and waits for it. */
+void stream_stop(struct stream *stream);
+/* Takes NULL and streams that were never started. */
+void stream_destroy(struct stream *stream);
+
+struct stream_state {
+    int64_t last_sound_ns; /* monotonic time at which sound last arrived; 0 before the first */
+    int64_t heard_ns;      /* watch time up to which it has been heard */
+    double heard_s;        /* sound taken in this run */
+    double lost_s;         /* sound lost in this run */
+    double cpu_s;          /* CPU time of its thread */
+    bool ended;
+    enum status status; /* STATUS_OK, or why the input ended badly */
+    char health[160];   /* in words; empty when there is nothing to say */
+};
+
+/* From any thread. */
+void stream_get_state(struct stream *stream, struct stream_state *out);
+
+#endif
