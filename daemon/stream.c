@@ -11,8 +11,9 @@
 #include <string.h>
 
 #define DRIFT_WINDOW_NS (60 * TIME_NS_PER_S)
-#define DRIFT_LIMIT_NS (TIME_NS_PER_S / 20) /* a map that is wrong by more than 50 ms is changed, and said   \
-                                             */
+#define DRIFT_LIMIT_NS                                                                                       \
+    (TIME_NS_PER_S / 20) /* a map that is wrong by more than 50 ms is changed, and said                      \
+                          */
 
 /* How far the sound card's clock and the computer's have drifted apart: the least delay of arrivals in each
  * window, since only the earliest arrivals are free of scheduling delay. */
@@ -33,7 +34,7 @@ struct stream {
     struct time_map map;
     bool anchored; /* a live stream's map is set at its first sound */
     uint64_t next_frame;
-    int64_t start_monotonic_ns, start_ns, start_frame;
+    int64_t start_monotonic_ns, start_ns;
     struct drift drift;
     pthread_t thread;
     bool running;
@@ -144,8 +145,7 @@ static void keep_pace(const struct stream *stream, uint32_t n_frames)
 {
     if (stream->facts.live || !stream->setup.settings->real_pace)
         return;
-    double played_s =
-        (double)(stream->next_frame + n_frames - (uint64_t)stream->start_frame) / stream->map.rate_hz;
+    double played_s = (double)(stream->next_frame + n_frames) / stream->map.rate_hz;
     clock_wait_until_ns(stream->start_monotonic_ns + (int64_t)(played_s * 1e9));
 }
 
