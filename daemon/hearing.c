@@ -1,0 +1,96 @@
+/* What the pages show beside the watch; see hearing.h. */
+#include "hearing.h"
+#include "base/time.h"
+#include <stdarg.h>
+#include <stdio.h>
+#include <string.h>
+
+/* Makes room at the front of a list of n items of a size; returns the new length. */
+static uint32_t push_front(void *list, uint32_t n, uint32_t max, size_t size)
+{
+    uint32_t kept = n < max ? n : max - 1;
+    memmove((char *)list + size, list, kept * size);
+    return kept + 1;
+}
+
+static void take_level(struct hearing_view *hearing, uint32_t stream, const struct level *level)
+{
+    uint32_t i = 0;
+    while (i < hearing->n_levels &&
+           (hearing->levels[i].stream != stream || hearing->levels[i].level.channel != level->channel))
+        i++;
+    if (i == BOARD_MAX_LEVELS)
+        return;
+    hearing->levels[i] = (struct hearing_level){.stream = stream, .level = *level};
+    if (i == hearing->n_levels)
+        hearing->n_levels++;
+}
+
+static void take_unheard(struct hearing_view *hearing, uint32_t stream, const struct unheard *unheard)
+{
+    hearing->n_unheard =
+        push_front(hearing->unheard, hearing->n_unheard, BOARD_MAX_UNHEARD, sizeof hearing->unheard[0]);
+    hearing->unheard[0] = (struct hearing_unheard){.stream = stream, .unheard = *unheard};
+    if (stream >= 1 && stream <= hearing->n_streams)
+        hearing->streams[stream - 1].unheard_s += time_to_s(unheard->end_ns - unheard->start_ns);
+}
+
+static void take_call(struct hearing_view *hearing, const struct outcome *outcome, const struct event *event)
+{
+    hearing->n_calls =
+        push_front(hearing->calls, hearing->n_calls, BOARD_MAX_CALLS, sizeof hearing->calls[0]);
+    hearing->calls[0] = (struct hearing_call){.stream = event->stream, .call = event->as.call};
+    flow_id(outcome->run, outcome->stream, "call", outcome->counter, hearing->calls[0].id);
+}
+
+static void take_impulse(struct hearing_view *hearing, const struct outcome *outcome,
+                         const struct event *event)
+{
+    hearing->n_impulses =
+        push_front(hearing->impulses, hearing->n_impulses, BOARD_MAX_IMPULSES, sizeof hearing->impulses[0]);
+    hearing->impulses[0] = (struct hearing_impulse){.stream = event->stream, .impulse = event->as.impulse};
+    flow_id(outcome->run, outcome->stream, "impulse", outcome->counter, hearing->impulses[0].id);
+}
+
+void hearing_take(struct hearing_view *hearing, const struct outcome *outcome)
+{
+    if (outcome->kind != OUTCOME_EVENT)
+        return;
+    const struct event *event = &outcome->as.event;
+    if (event->kind == EVENT_LEVEL)
+        take_level(hearing, event->stream, &event->as.level);
+    else if (event->kind == EVENT_UNHEARD)
+        take_unheard(hearing, event->stream, &event->as.unheard);
+    else if (event->kind == EVENT_CALL)
+        take_call(hearing, outcome, event);
+    else if (event->kind == EVENT_IMPULSE)
+        take_impulse(hearing, outcome, event);
+}
+
+void hearing_add_unrecorded(struct hearing_view *hearing, const char *id)
+{
+    hearing->n_unrecorded = push_front(hearing->unrecorded, hearing->n_unrecorded, BOARD_MAX_UNRECORDED,
+                                       sizeof hearing->unrecorded[0]);
+    snprintf(hearing->unrecorded[0], FLOW_ID_SIZE, "%s", id);
+}
+
+void hearing_set_recorded(struct hearing_view *hearing, const char *id)
+{
+    for (uint32_t i = 0; i < hearing->n_unrecorded; i++)
+        if (strcmp(hearing->unrecorded[i], id) == 0) {
+            hearing->n_unrecorded--;
+            memmove(hearing->unrecorded[i], hearing->unrecorded[i + 1],
+                    (hearing->n_unrecorded - i) * sizeof hearing->unrecorded[0]);
+            return;
+        }
+}
+
+void hearing_add_fault(struct hearing_view *hearing, const char *format, ...)
+{
+    if (hearing->n_faults == BOARD_MAX_FAULTS)
+        return;
+    va_list arguments;
+    va_start(arguments, format);
+    vsnprintf(hearing->faults[hearing->n_faults++], BOARD_LINE_SIZE, format, arguments);
+    va_end(arguments);
+}

@@ -1,0 +1,20 @@
+/* Keeps what the pages show beside the watch: last levels, calls, impulses, unheard time. Owned by the watch
+ * thread. */
+#ifndef HEARING_H
+#define HEARING_H
+
+#include "flow.h"
+#include "http/board.h"
+
+/* Remembers one outcome of the watch; newest first, oldest dropped. */
+void hearing_take(struct hearing_view *hearing, const struct outcome *outcome);
+
+/* Remembers an advice that waits to be committed, and forgets it once it has been. */
+void hearing_add_unrecorded(struct hearing_view *hearing, const char *id);
+void hearing_set_recorded(struct hearing_view *hearing, const char *id);
+
+/* Adds a line to the faults of this moment; callers clear n_faults first. */
+void hearing_add_fault(struct hearing_view *hearing, const char *format, ...)
+    __attribute__((format(printf, 2, 3)));
+
+#endif
