@@ -1,0 +1,135 @@
+/* daemon/settings: every error of meaning at once, each with file, line, key and what is allowed. */
+#include "support/test.h"
+
+#include "settings/notes.h"
+#include "settings/site.h"
+#include <math.h>
+#include <stdlib.h>
+#include <unistd.h>
+
+static char path[] = "/tmp/hushwatch-settings-XXXXXX";
+
+static void write_file(const char *text)
+{
+    FILE *file = fopen(path, "w");
+    assert_non_null(file);
+    fputs(text, file);
+    fclose(file);
+}
+
+static const char good[] = "name = \"Trial\";\n"
+                           "ledger = \"trial.ledger\";\n"
+                           "permit = \"permits/demonstration.cfg\";\n"
+                           "calls = \"/calls\";\n"
+                           "streams = ( { input = \"device\"; device = \"hydro\"; rate_hz = 96000;\n"
+                           "  channels = ( { role = \"listen\"; sensitivity_db = -180.0; gain_db = 20.0;\n"
+                           "                 full_scale_v = 1.0; } ); } );\n";
+
+static void good_settings_are_read(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site;
+    write_file(good);
+    assert_int_equal(site_load(path, &problems, &site), STATUS_OK);
+    assert_int_equal(problems.count, 0);
+    assert_string_equal(site.ledger, "/tmp/trial.ledger");
+    assert_string_equal(site.calls, "/calls");
+    assert_int_equal(site.streams[0].n_channels, 1);
+    assert_true(site.streams[0].channels[0].calibration.known);
+    /* V1c of IEC 60565 conventions: -180 dB re 1 V/uPa, 0 dB, 1 V is a full scale of 180 dB; 20 dB of gain,
+     * 160. */
+    assert_near(calibration_clip_db(&site.streams[0].channels[0].calibration), 160.0, 1e-9);
+    assert_non_null(strstr(site.effective.data, "streams[0].rate_hz = 96000\n"));
+    assert_non_null(strstr(site.effective.data, "contact.gap_s = 300  # default\n"));
+    site_destroy(&site);
+    problems_destroy(&problems);
+}
+
+static void all_errors_of_meaning_come_at_once(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site;
+    write_file("name = 7;\n"
+               "legder = \"trial.ledger\";\n"
+               "permit = \"p\";\n"
+               "calls = \"c\";\n"
+               "pages = { port = 70000; address = \"10.0.0.1\"; };\n"
+               "streams = ( { input = \"microphone\"; rate_hz = 96000.5;\n"
+               "  channels = ( { role = \"both\"; sensitivity_db = -180.0; } ); } );\n");
+    assert_int_equal(site_load(path, &problems, &site), STATUS_BAD_FORMAT);
+    const char *lines = problems.lines.data;
+    assert_non_null(strstr(lines, ":1: name: is not a text"));
+    assert_non_null(strstr(lines, ": ledger: is missing"));
+    assert_non_null(strstr(lines, ":2: legder: is not a known key; did you mean \"ledger\"?"));
+    assert_non_null(strstr(lines, ":5: pages.port: is 70000; allowed: 0 to 65535"));
+    assert_non_null(strstr(lines, ":5: pages.address: is \"10.0.0.1\"; allowed: a loopback address"));
+    assert_non_null(
+        strstr(lines, ":6: streams[0].input: is \"microphone\"; allowed: device, recording, pcm, scene"));
+    assert_non_null(strstr(lines, ":6: streams[0].rate_hz: is 96000.5; allowed: whole numbers"));
+    assert_non_null(strstr(lines, "streams[0].channels[0].full_scale_v: is missing"));
+    assert_non_null(strstr(lines, path));
+    site_destroy(&site);
+    problems_destroy(&problems);
+}
+
+static void of_syntax_the_first_error_is_told(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site;
+    write_file("name = \"x\";\nledger = = ;\n");
+    assert_int_equal(site_load(path, &problems, &site), STATUS_BAD_FORMAT);
+    assert_int_equal(problems.count, 1);
+    assert_non_null(strstr(problems.lines.data, ":2: syntax error"));
+    site_destroy(&site);
+    problems_destroy(&problems);
+    unlink(path);
+    problems = (struct problems){0};
+    assert_int_equal(site_load(path, &problems, &site), STATUS_BAD_FORMAT);
+    assert_non_null(strstr(problems.lines.data, "cannot be read (No such file"));
+    site_destroy(&site);
+    problems_destroy(&problems);
+}
+
+static void timed_notes_go_through_the_notes_door(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    struct timed_note *notes = NULL;
+    unsigned n = 0;
+    write_file(
+        "notes = ( { at_s = 9; kind = \"sighting\"; person = \"B. Eyes\"; group = \"baleen whale\"; "
+        "distance_m = 900; },\n"
+        "          { at_s = 1.5; kind = \"sign-on\"; person = \"A. Ears\"; watch = \"acoustic\"; } );\n");
+    assert_int_equal(notes_load(path, &problems, &notes, &n), STATUS_OK);
+    assert_int_equal(n, 2);
+    assert_near(notes[0].at_s, 1.5, 0);
+    assert_int_equal(notes[0].note.kind, NOTE_SIGN_ON);
+    assert_near(notes[1].note.distance_m, 900, 0);
+    free(notes);
+    write_file("notes = ( { at_s = 9; kind = \"sighting\"; group = \"unicorn\"; },\n"
+               "          { at_s = 1; kind = \"dance\"; },\n"
+               "          { at_s = 2; kind = \"sign-on\"; person = \"A\"; wacth = \"visual\"; } );\n");
+    assert_int_equal(notes_load(path, &problems, &notes, &n), STATUS_BAD_FORMAT);
+    assert_non_null(strstr(problems.lines.data, ":1: notes[0].group: is \"unicorn\"; allowed: "));
+    assert_non_null(strstr(problems.lines.data, ":2: notes[1].kind: is \"dance\", which is no kind of note"));
+    assert_non_null(strstr(problems.lines.data, ":3: notes[2].wacth: is no field of a note"));
+    problems_destroy(&problems);
+}
+
+int main(void)
+{
+    if (mkstemp(path) < 0)
+        return 1;
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test(good_settings_are_read),
+        cmocka_unit_test(all_errors_of_meaning_come_at_once),
+        cmocka_unit_test(of_syntax_the_first_error_is_told),
+        cmocka_unit_test(timed_notes_go_through_the_notes_door),
+    };
+    int failed = cmocka_run_group_tests_name("settings", tests, NULL, NULL);
+    unlink(path);
+    return failed;
+}
