@@ -49,7 +49,7 @@ struct input_kind {
     void (*get_health)(void *input, char *out, size_t size);
 };
 
-/* The table, closed by a NULL name. */
+/* The table (kinds.h), closed by NULL. */
 extern const struct input_kind *const input_kinds[];
 /* The kind of that name, or NULL. */
 const struct input_kind *input_find(const char *name);
