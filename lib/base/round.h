@@ -12,6 +12,9 @@
 #define ROUND_DECIMALS_M 1           /* 0.1 m */
 #define ROUND_DECIMALS_DEG 1         /* 0.1 degree */
 #define ROUND_DECIMALS_PROBABILITY 3 /* 0.001 */
+#define ROUND_DECIMALS_EVIDENCE 3    /* 0.001 of log-odds */
+#define ROUND_DECIMALS_SEA_STATE 1   /* 0.1 */
+#define ROUND_DECIMALS_NUMBER 0      /* animals are counted */
 #define ROUND_DECIMALS_POSITION 6    /* 1e-6 degree */
 
 /* x to the given number of decimals (0 to 9), halves away from zero; NaN and infinities unchanged; -0 becomes

@@ -23,13 +23,22 @@ struct entry {
     const char *hash;
 };
 
-/* The body of an outcome. STATUS_NO_MEMORY leaves out unusable. */
-enum status entry_body(const struct outcome *outcome, struct text *out);
+/* The body of an outcome, as docs/ledger.md lists it. zero_unix_ns
+ * is the UTC of watch time zero, for the few texts that are UTC. A `run` outcome gives only the outage: the
+ * daemon and the scan write entry_body_run (record/marks.h) in its place. STATUS_NO_MEMORY leaves out
+ * unusable.
+ */
+enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, struct text *out);
 
 /* The event behind the entry of an input kind (run, unheard, impulse, call, note); the watch is rebuilt from
  * these. watch_ns is the entry's time. STATUS_NOT_FOUND for a kind that is no input (level, phase, advice
  * ...); STATUS_BAD_FORMAT for a body that this program did not write. */
 enum status entry_event(const char *kind, const char *body, int64_t watch_ns, struct event *out);
+
+/* Makes an event what its entry will say of it: numbers and times rounded by base/round.h, bytes of texts
+ * that are not UTF-8 replaced by '?'. For every event at the watch's door (before watch_push), so that the
+ * watch at sea and a rerun work on the same event: after it, entry_event(entry_body(event)) is the event. */
+void entry_round(struct event *event);
 
 /* SHA-256, in lower-case hex, of: previous hash, newline, seq, newline, utc, newline, kind, newline, body.
  * The previous hash of the first entry is 64 zeros. */

@@ -1,0 +1,252 @@
+/* Bodies of what the watch says, one function a kind, and the hash that chains entries. */
+#include "record/entry.h"
+#include "base/round.h"
+#include "base/time.h"
+#include "record/body.h"
+#include "record/marks.h"
+#include <inttypes.h>
+#include <math.h>
+#include <sodium.h>
+#include <stdio.h>
+#include <string.h>
+
+static enum status unheard_body(const struct event *event, struct text *out)
+{
+    const struct unheard *unheard = &event->as.unheard;
+    struct body body;
+    body_begin(&body, out);
+    body_text(&body, "cause", unheard_cause_text(unheard->cause));
+    body_integer(&body, "channel", unheard->channel);
+    body_time(&body, "end_s", unheard->end_ns);
+    body_number(&body, "high_hz", unheard->high_hz, ROUND_DECIMALS_HZ);
+    body_id(&body, event->run, event->stream, "unheard", event->counter);
+    body_number(&body, "low_hz", unheard->low_hz, ROUND_DECIMALS_HZ);
+    body_time(&body, "start_s", unheard->start_ns);
+    body_integer(&body, "stream", event->stream);
+    return body_end(&body);
+}
+
+static enum status impulse_body(const struct event *event, struct text *out)
+{
+    const struct impulse *impulse = &event->as.impulse;
+    struct body body;
+    body_begin(&body, out);
+    body_number(&body, "background_db", impulse->background_db, ROUND_DECIMALS_DB);
+    body_integer(&body, "channel", impulse->channel);
+    body_bool(&body, "clipped", impulse->clipped);
+    body_id(&body, event->run, event->stream, "impulse", event->counter);
+    body_text_or_null(&body, "job", impulse->job);
+    body_bool(&body, "overlapped", impulse->overlapped);
+    body_number(&body, "peak_db", impulse->peak_db, ROUND_DECIMALS_DB);
+    body_number(&body, "peak_to_peak_db", impulse->peak_to_peak_db, ROUND_DECIMALS_DB);
+    body_bool(&body, "relative", impulse->relative);
+    body_number(&body, "rms90_db", impulse->rms90_db, ROUND_DECIMALS_DB);
+    body_number(&body, "sel_db", impulse->sel_db, ROUND_DECIMALS_DB);
+    body_integer(&body, "stream", event->stream);
+    body_number(&body, "t90_s", impulse->t90_s, ROUND_DECIMALS_S);
+    body_time(&body, "time_s", impulse->time_ns);
+    body_bool(&body, "weak", impulse->weak);
+    body_text(&body, "whose", impulse_whose_text(impulse->whose));
+    return body_end(&body);
+}
+
+static enum status call_body(const struct event *event, struct text *out)
+{
+    const struct call *call = &event->as.call;
+    struct body body;
+    body_begin(&body, out);
+    body_number(&body, "bearing_deg", call->bearing_deg, ROUND_DECIMALS_DEG);
+    body_text_or_null(&body, "bearing_from", bearing_from_text(call->bearing_from));
+    body_number(&body, "certainty", call->certainty, ROUND_DECIMALS_PROBABILITY);
+    body_integer(&body, "channel", call->channel);
+    body_text(&body, "class", call->class_name);
+    body_time(&body, "end_s", call->end_ns);
+    body_number(&body, "evidence", call->evidence, ROUND_DECIMALS_EVIDENCE);
+    body_text(&body, "form", call_form_text(call->form));
+    body_text(&body, "group", group_text(call->group));
+    body_number(&body, "high_hz", call->high_hz, ROUND_DECIMALS_HZ);
+    body_id(&body, event->run, event->stream, "call", event->counter);
+    body_number(&body, "interval_s", call->interval_s, ROUND_DECIMALS_S);
+    body_number(&body, "level_db", call->level_db, ROUND_DECIMALS_DB);
+    body_number(&body, "low_hz", call->low_hz, ROUND_DECIMALS_HZ);
+    body_number(&body, "mirror_deg", call->mirror_deg, ROUND_DECIMALS_DEG);
+    body_integer(&body, "n_pulses", call->n_pulses);
+    body_bool(&body, "relative", call->relative);
+    body_number(&body, "snr_db", call->snr_db, ROUND_DECIMALS_DB);
+    body_time(&body, "start_s", call->start_ns);
+    body_integer(&body, "stream", event->stream);
+    return body_end(&body);
+}
+
+static enum status note_body(const struct event *event, struct text *out)
+{
+    const struct note *note = &event->as.note;
+    struct body body;
+    body_begin(&body, out);
+    body_text_if_given(&body, "advice", note->advice);
+    body_text_if_given(&body, "answer", note->answer);
+    body_number_if_given(&body, "bearing_deg", note->bearing_deg, ROUND_DECIMALS_DEG);
+    if (note->calf)
+        body_bool(&body, "calf", true);
+    if (note->contact != 0)
+        body_integer(&body, "contact", note->contact);
+    body_number_if_given(&body, "distance_m", note->distance_m, ROUND_DECIMALS_M);
+    if (note->group != GROUP_UNKNOWN)
+        body_text(&body, "group", group_text(note->group));
+    body_id(&body, event->run, event->stream, "note", event->counter);
+    body_text_if_given(&body, "job", note->job);
+    body_time(&body, "known_s", note->known_ns);
+    if (note->leaving)
+        body_bool(&body, "leaving", true);
+    body_text(&body, "note", note_kind_text(note->kind));
+    body_number_if_given(&body, "number", note->number, ROUND_DECIMALS_NUMBER);
+    body_time(&body, "occurred_s", note->occurred_ns);
+    body_text_if_given(&body, "person", note->person);
+    body_number_if_given(&body, "sea_state", note->sea_state, ROUND_DECIMALS_SEA_STATE);
+    body_text_if_given(&body, "source_state", note->source_state);
+    body_text_if_given(&body, "species", note->species);
+    body_text_if_given(&body, "station", note->station);
+    body_text_if_given(&body, "text", note->text);
+    body_text_if_given(&body, "verdict", note->verdict);
+    body_number_if_given(&body, "visibility_m", note->visibility_m, ROUND_DECIMALS_M);
+    body_text_if_given(&body, "watch", note->watch);
+    return body_end(&body);
+}
+
+static enum status event_body(const struct event *event, int64_t zero_unix_ns, struct text *out)
+{
+    switch (event->kind) {
+    case EVENT_RUN:
+        return entry_body_run(event->run, &event->as.run_mark, zero_unix_ns, NULL, out);
+    case EVENT_UNHEARD:
+        return unheard_body(event, out);
+    case EVENT_LEVEL:
+        return body_of_levels(event->run, event->stream, event->counter, &event->as.level, 1, out);
+    case EVENT_IMPULSE:
+        return impulse_body(event, out);
+    case EVENT_CALL:
+        return call_body(event, out);
+    case EVENT_NOTE:
+        return note_body(event, out);
+    }
+    return STATUS_BAD_ARGUMENT;
+}
+
+static enum status contact_body(const struct outcome *outcome, struct text *out)
+{
+    const struct contact_outcome *contact = &outcome->as.contact;
+    const struct whereabouts *where = &contact->whereabouts;
+    struct body body;
+    body_begin(&body, out);
+    body_number(&body, "bearing_deg", contact->bearing_deg, ROUND_DECIMALS_DEG);
+    body_text_or_null(&body, "bearing_from", bearing_from_text(contact->bearing_from));
+    body_integer(&body, "contact", contact->contact);
+    body_number(&body, "distance_p05_m", whereabouts_quantile_m(where, 0.05), ROUND_DECIMALS_M);
+    body_number(&body, "distance_p50_m", whereabouts_quantile_m(where, 0.50), ROUND_DECIMALS_M);
+    body_number(&body, "distance_p95_m", whereabouts_quantile_m(where, 0.95), ROUND_DECIMALS_M);
+    body_text(&body, "grade", grade_text(contact->grade));
+    body_text(&body, "group", group_text(contact->group));
+    body_id(&body, outcome->run, outcome->stream, "contact", outcome->counter);
+    body_number(&body, "mirror_deg", contact->mirror_deg, ROUND_DECIMALS_DEG);
+    body_integer(&body, "n_calls", contact->n_calls);
+    body_number(&body, "p_inside", contact->p_inside, ROUND_DECIMALS_PROBABILITY);
+    body_text(&body, "state", contact_state_text(contact->state));
+    return body_end(&body);
+}
+
+static enum status phase_body(const struct outcome *outcome, struct text *out)
+{
+    const struct phase_outcome *phase = &outcome->as.phase;
+    struct body body;
+    body_begin(&body, out);
+    body_causes(&body, phase->n_causes, phase->causes);
+    body_text_or_null(&body, "clause", phase->clause);
+    body_id(&body, outcome->run, outcome->stream, "phase", outcome->counter);
+    body_text_or_null(&body, "job", phase->job);
+    body_text(&body, "phase", phase_text(phase->phase));
+    body_text(&body, "reason", phase->reason);
+    return body_end(&body);
+}
+
+static enum status advice_body(const struct outcome *outcome, int64_t zero_unix_ns, struct text *out)
+{
+    const struct advice_outcome *advice = &outcome->as.advice;
+    char until[TIME_UTC_SIZE] = "";
+    if (advice->until_ns >= 0)
+        time_format_utc(zero_unix_ns + advice->until_ns, until);
+    struct body body;
+    body_begin(&body, out);
+    body_text(&body, "advice", advice_text(advice->advice));
+    body_causes(&body, advice->n_causes, advice->causes);
+    body_text_or_null(&body, "clause", advice->clause);
+    body_bool(&body, "confirmed", advice->confirmed);
+    body_id(&body, outcome->run, outcome->stream, "advice", outcome->counter);
+    body_text_or_null(&body, "job", advice->job);
+    body_text(&body, "reason", advice->reason);
+    body_text_or_null(&body, "requires", advice->requires);
+    body_text(&body, "station", advice->station);
+    body_text_or_null(&body, "until", until);
+    if (advice->until_ns >= 0)
+        body_time(&body, "until_s", advice->until_ns);
+    return body_end(&body);
+}
+
+static enum status finding_body(const struct outcome *outcome, struct text *out)
+{
+    const struct finding_outcome *finding = &outcome->as.finding;
+    struct body body;
+    body_begin(&body, out);
+    body_causes(&body, finding->n_causes, finding->causes);
+    body_text_or_null(&body, "clause", finding->clause);
+    body_text(&body, "code", finding->code);
+    body_text(&body, "detail", finding->detail);
+    body_text(&body, "grade", finding->grade);
+    body_id(&body, outcome->run, outcome->stream, "finding", outcome->counter);
+    body_text_or_null(&body, "job", finding->job);
+    return body_end(&body);
+}
+
+enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, struct text *out)
+{
+    switch (outcome->kind) {
+    case OUTCOME_EVENT:
+        return event_body(&outcome->as.event, zero_unix_ns, out);
+    case OUTCOME_CONTACT:
+        return contact_body(outcome, out);
+    case OUTCOME_PHASE:
+        return phase_body(outcome, out);
+    case OUTCOME_ADVICE:
+        return advice_body(outcome, zero_unix_ns, out);
+    case OUTCOME_FINDING:
+        return finding_body(outcome, out);
+    }
+    return STATUS_BAD_ARGUMENT;
+}
+
+static void hash_piece(crypto_hash_sha256_state *state, const char *piece)
+{
+    crypto_hash_sha256_update(state, (const unsigned char *)piece, strlen(piece));
+}
+
+static void hash_line(crypto_hash_sha256_state *state, const char *line)
+{
+    hash_piece(state, line);
+    hash_piece(state, "\n");
+}
+
+void entry_hash(const char *previous_hash, int64_t seq, const char *utc, const char *kind, const char *body,
+                char out[ENTRY_HASH_SIZE])
+{
+    char number[24];
+    snprintf(number, sizeof number, "%" PRId64, seq);
+    crypto_hash_sha256_state state;
+    crypto_hash_sha256_init(&state);
+    hash_line(&state, previous_hash);
+    hash_line(&state, number);
+    hash_line(&state, utc);
+    hash_line(&state, kind);
+    hash_piece(&state, body);
+    unsigned char digest[crypto_hash_sha256_BYTES];
+    crypto_hash_sha256_final(&state, digest);
+    sodium_bin2hex(out, ENTRY_HASH_SIZE, digest, sizeof digest);
+}

@@ -1,0 +1,295 @@
+/* From an entry's body back to the event that the watch took, and the rounding that makes it the same event.
+ * Strict: a missing key, another type or an unknown word is a body that this program did not write. */
+#include "base/round.h"
+#include "base/time.h"
+#include "record/entry.h"
+#include <errno.h>
+#include <jansson.h>
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* A parsed body; the first thing that is wrong makes it not good, and the rest is then skipped. */
+struct reading {
+    json_t *root;
+    bool good;
+};
+
+static json_t *member(struct reading *reading, const char *key, bool required)
+{
+    json_t *value = json_object_get(reading->root, key);
+    if (!value && required)
+        reading->good = false;
+    return value;
+}
+
+static void read_text(struct reading *reading, const char *key, bool required, char *out, size_t size)
+{
+    json_t *value = member(reading, key, required);
+    out[0] = '\0';
+    if (!value || json_is_null(value))
+        return;
+    const char *text = json_string_value(value);
+    if (!text || json_string_length(value) >= size) {
+        reading->good = false;
+        return;
+    }
+    memcpy(out, text, json_string_length(value) + 1);
+}
+
+static double read_number(struct reading *reading, const char *key, bool required, double if_null)
+{
+    json_t *value = member(reading, key, required);
+    if (!value || json_is_null(value))
+        return if_null;
+    if (!json_is_number(value)) {
+        reading->good = false;
+        return if_null;
+    }
+    return json_number_value(value);
+}
+
+static int64_t read_time(struct reading *reading, const char *key)
+{
+    double seconds = read_number(reading, key, true, NAN);
+    /* 9e9 s: beyond it a double no longer holds whole microseconds. */
+    if (!(fabs(seconds) < 9e9)) {
+        reading->good = false;
+        return 0;
+    }
+    return time_from_s(seconds);
+}
+
+static uint32_t read_count(struct reading *reading, const char *key, bool required)
+{
+    json_t *value = member(reading, key, required);
+    if (!value)
+        return 0;
+    json_int_t n = json_integer_value(value);
+    if (!json_is_integer(value) || n < 0 || n > UINT32_MAX) {
+        reading->good = false;
+        return 0;
+    }
+    return (uint32_t)n;
+}
+
+static bool read_bool(struct reading *reading, const char *key, bool required)
+{
+    json_t *value = member(reading, key, required);
+    if (value && !json_is_boolean(value))
+        reading->good = false;
+    return json_is_true(value);
+}
+
+/* The index of a word in its table, by the table's own text function. */
+static int read_word(struct reading *reading, const char *key, int count, const char *(*text)(int))
+{
+    char word[NOTE_NAME_SIZE];
+    read_text(reading, key, true, word, sizeof word);
+    for (int i = 0; i < count; i++)
+        if (strcmp(word, text(i)) == 0)
+            return i;
+    reading->good = false;
+    return 0;
+}
+
+static const char *cause_word(int i)
+{
+    return unheard_cause_text((enum unheard_cause)i);
+}
+
+static const char *whose_word(int i)
+{
+    return impulse_whose_text((enum impulse_whose)i);
+}
+
+static const char *form_word(int i)
+{
+    return call_form_text((enum call_form)i);
+}
+
+static const char *from_word(int i)
+{
+    return bearing_from_text((enum bearing_from)i);
+}
+
+static const char *group_word(int i)
+{
+    return group_text((enum group)i);
+}
+
+static const char *note_word(int i)
+{
+    return note_kind_text((enum note_kind)i);
+}
+
+static void read_run(struct reading *reading, struct run_mark *mark)
+{
+    mark->outage_start_ns = read_time(reading, "outage_start_s");
+    mark->outage_end_ns = read_time(reading, "outage_end_s");
+}
+
+static void read_unheard(struct reading *reading, struct unheard *unheard)
+{
+    unheard->channel = read_count(reading, "channel", true);
+    unheard->low_hz = read_number(reading, "low_hz", true, 0);
+    unheard->high_hz = read_number(reading, "high_hz", true, INFINITY); /* no upper limit */
+    unheard->start_ns = read_time(reading, "start_s");
+    unheard->end_ns = read_time(reading, "end_s");
+    unheard->cause = (enum unheard_cause)read_word(reading, "cause", UNHEARD_TOO_QUIET + 1, cause_word);
+}
+
+static void read_impulse(struct reading *reading, struct impulse *impulse)
+{
+    impulse->channel = read_count(reading, "channel", true);
+    impulse->time_ns = read_time(reading, "time_s");
+    impulse->sel_db = read_number(reading, "sel_db", true, NAN);
+    impulse->peak_db = read_number(reading, "peak_db", true, NAN);
+    impulse->peak_to_peak_db = read_number(reading, "peak_to_peak_db", true, NAN);
+    impulse->rms90_db = read_number(reading, "rms90_db", true, NAN);
+    impulse->t90_s = read_number(reading, "t90_s", true, NAN);
+    impulse->background_db = read_number(reading, "background_db", true, NAN);
+    impulse->relative = read_bool(reading, "relative", true);
+    impulse->clipped = read_bool(reading, "clipped", true);
+    impulse->overlapped = read_bool(reading, "overlapped", true);
+    impulse->weak = read_bool(reading, "weak", true);
+    impulse->whose = (enum impulse_whose)read_word(reading, "whose", IMPULSE_UNKNOWN + 1, whose_word);
+    read_text(reading, "job", true, impulse->job, sizeof impulse->job);
+}
+
+static void read_call(struct reading *reading, struct call *call)
+{
+    call->channel = read_count(reading, "channel", true);
+    read_text(reading, "class", true, call->class_name, sizeof call->class_name);
+    call->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
+    call->form = (enum call_form)read_word(reading, "form", CALL_TRAIN + 1, form_word);
+    call->start_ns = read_time(reading, "start_s");
+    call->end_ns = read_time(reading, "end_s");
+    call->low_hz = read_number(reading, "low_hz", true, NAN);
+    call->high_hz = read_number(reading, "high_hz", true, NAN);
+    call->n_pulses = read_count(reading, "n_pulses", true);
+    call->interval_s = read_number(reading, "interval_s", true, NAN);
+    call->snr_db = read_number(reading, "snr_db", true, NAN);
+    call->level_db = read_number(reading, "level_db", true, NAN);
+    call->relative = read_bool(reading, "relative", true);
+    call->bearing_deg = read_number(reading, "bearing_deg", true, NAN);
+    call->mirror_deg = read_number(reading, "mirror_deg", true, NAN);
+    call->bearing_from = (enum bearing_from)read_word(reading, "bearing_from", BEARING_AHEAD + 1, from_word);
+    call->certainty = read_number(reading, "certainty", true, NAN);
+    call->evidence = read_number(reading, "evidence", true, NAN);
+}
+
+static void read_note(struct reading *reading, struct note *note)
+{
+    note->kind = (enum note_kind)read_word(reading, "note", NOTE_KIND_COUNT, note_word);
+    note->occurred_ns = read_time(reading, "occurred_s");
+    note->known_ns = read_time(reading, "known_s");
+    read_text(reading, "person", false, note->person, sizeof note->person);
+    read_text(reading, "watch", false, note->watch, sizeof note->watch);
+    read_text(reading, "station", false, note->station, sizeof note->station);
+    read_text(reading, "species", false, note->species, sizeof note->species);
+    read_text(reading, "verdict", false, note->verdict, sizeof note->verdict);
+    read_text(reading, "answer", false, note->answer, sizeof note->answer);
+    read_text(reading, "advice", false, note->advice, sizeof note->advice);
+    read_text(reading, "job", false, note->job, sizeof note->job);
+    read_text(reading, "source_state", false, note->source_state, sizeof note->source_state);
+    read_text(reading, "text", false, note->text, sizeof note->text);
+    if (json_object_get(reading->root, "group"))
+        note->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
+    note->contact = read_count(reading, "contact", false);
+    note->number = read_number(reading, "number", false, NAN);
+    note->distance_m = read_number(reading, "distance_m", false, NAN);
+    note->bearing_deg = read_number(reading, "bearing_deg", false, NAN);
+    note->sea_state = read_number(reading, "sea_state", false, NAN);
+    note->visibility_m = read_number(reading, "visibility_m", false, NAN);
+    note->calf = read_bool(reading, "calf", false);
+    note->leaving = read_bool(reading, "leaving", false);
+}
+
+/* Decimal digits up to `end`, at least one. */
+static bool read_digits(const char **text, char end, uint64_t max, uint64_t *out)
+{
+    if (**text < '0' || **text > '9')
+        return false;
+    char *stop;
+    errno = 0;
+    unsigned long long value = strtoull(*text, &stop, 10);
+    if (errno || *stop != end || value > max)
+        return false;
+    *text = stop + (end != '\0');
+    *out = value;
+    return true;
+}
+
+/* "run.stream.kind.counter" of the expected kind. */
+static void read_id(struct reading *reading, const char *kind, struct event *event)
+{
+    char id[FLOW_ID_SIZE];
+    read_text(reading, "id", true, id, sizeof id);
+    const char *at = id;
+    uint64_t run = 0, stream = 0, counter = 0;
+    size_t length = strlen(kind);
+    if (!read_digits(&at, '.', UINT32_MAX, &run) || !read_digits(&at, '.', UINT32_MAX, &stream) ||
+        strncmp(at, kind, length) != 0 || at[length] != '.') {
+        reading->good = false;
+        return;
+    }
+    at += length + 1;
+    if (!read_digits(&at, '\0', UINT64_MAX, &counter))
+        reading->good = false;
+    event->run = (uint32_t)run;
+    event->stream = (uint32_t)stream;
+    event->counter = counter;
+}
+
+static bool input_kind(const char *kind, enum event_kind *out)
+{
+    static const enum event_kind inputs[] = {EVENT_RUN, EVENT_UNHEARD, EVENT_IMPULSE, EVENT_CALL, EVENT_NOTE};
+    for (size_t i = 0; i < sizeof inputs / sizeof inputs[0]; i++)
+        if (strcmp(kind, flow_event_kind_text(inputs[i])) == 0) {
+            *out = inputs[i];
+            return true;
+        }
+    return false;
+}
+
+static void read_event(struct reading *reading, struct event *event)
+{
+    switch (event->kind) {
+    case EVENT_RUN:
+        read_run(reading, &event->as.run_mark);
+        break;
+    case EVENT_UNHEARD:
+        read_unheard(reading, &event->as.unheard);
+        break;
+    case EVENT_IMPULSE:
+        read_impulse(reading, &event->as.impulse);
+        break;
+    case EVENT_CALL:
+        read_call(reading, &event->as.call);
+        break;
+    case EVENT_NOTE:
+        read_note(reading, &event->as.note);
+        break;
+    case EVENT_LEVEL: /* not among the inputs */
+        break;
+    }
+}
+
+enum status entry_event(const char *kind, const char *body, int64_t watch_ns, struct event *out)
+{
+    struct event event = {.known_ns = watch_ns};
+    if (!input_kind(kind, &event.kind))
+        return STATUS_NOT_FOUND;
+    json_error_t error;
+    struct reading reading = {.root = json_loads(body, JSON_REJECT_DUPLICATES, &error), .good = true};
+    if (!reading.root)
+        return json_error_code(&error) == json_error_out_of_memory ? STATUS_NO_MEMORY : STATUS_BAD_FORMAT;
+    read_id(&reading, kind, &event);
+    read_event(&reading, &event);
+    json_decref(reading.root);
+    if (!reading.good)
+        return STATUS_BAD_FORMAT;
+    *out = event;
+    return STATUS_OK;
+}
