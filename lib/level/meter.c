@@ -1,0 +1,170 @@
+/* Levels of one channel, one a second. */
+#include "level/meter.h"
+#include "base/units.h"
+#include "level/decidecades.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define LANES 8
+#define HELD 4 /* seconds whose bands are not complete yet, at most two in fact */
+
+/* What the samples of one second gave. */
+struct running {
+    uint64_t start_frame;
+    uint32_t frames;
+    double sum_squares;
+    float peak;
+};
+
+struct meter {
+    uint32_t rate_hz, hop, n_bands;
+    uint32_t fill, counted; /* frames in pending, and how many of them are in the sums */
+    bool relative;
+    uint64_t next_frame;
+    uint64_t next_second; /* the first not given yet */
+    struct running seconds[HELD];
+    struct decidecades *decidecades;
+    float *pending; /* [hop] frames on their way to the decidecades */
+};
+
+enum status meter_create(double rate_hz, bool relative, struct meter **out)
+{
+    if (!(rate_hz >= 8000) || !(rate_hz <= 1000000) || rate_hz != floor(rate_hz))
+        return STATUS_BAD_ARGUMENT;
+    struct meter *meter = calloc(1, sizeof *meter);
+    if (!meter)
+        return STATUS_NO_MEMORY;
+    meter->rate_hz = (uint32_t)rate_hz;
+    meter->relative = relative;
+    meter->n_bands = decidecades_count(rate_hz);
+    enum status status = decidecades_create(meter->rate_hz, &meter->decidecades);
+    if (!status) {
+        meter->hop = decidecades_get_hop(meter->decidecades);
+        meter->pending = malloc(meter->hop * sizeof *meter->pending);
+        status = meter->pending ? STATUS_OK : STATUS_NO_MEMORY;
+    }
+    if (status) {
+        meter_destroy(meter);
+        return status;
+    }
+    meter_reset(meter, 0);
+    *out = meter;
+    return STATUS_OK;
+}
+
+void meter_destroy(struct meter *meter)
+{
+    if (!meter)
+        return;
+    decidecades_destroy(meter->decidecades);
+    free(meter->pending);
+    free(meter);
+}
+
+void meter_reset(struct meter *meter, uint64_t next_frame)
+{
+    meter->next_frame = next_frame;
+    meter->next_second = next_frame / meter->rate_hz;
+    meter->fill = meter->counted = 0;
+    memset(meter->seconds, 0, sizeof meter->seconds);
+    decidecades_reset(meter->decidecades, next_frame);
+}
+
+static double band_db(const struct decidecade_sums *sums, uint32_t band, double rate_hz)
+{
+    int n = LEVEL_FIRST_BAND + (int)band;
+    double width_hz = decidecades_high_hz(n) - decidecades_low_hz(n);
+    if (sums->frames[band] * width_hz < rate_hz)
+        return NAN;
+    return units_spl_db(sums->energy[band] / sums->frames[band]);
+}
+
+static void give(struct meter *meter, const struct level_sink *sink)
+{
+    struct running *running = &meter->seconds[meter->next_second % HELD];
+    struct decidecade_sums sums;
+    decidecades_take(meter->decidecades, meter->next_second, &sums);
+    meter->next_second++;
+    struct found_level level = {.start_frame = running->start_frame,
+                                .known_frame = meter->next_frame - 1,
+                                .frames = running->frames,
+                                .n_bands = meter->n_bands,
+                                .relative = meter->relative};
+    if (running->frames >= METER_SHORTEST_S * meter->rate_hz) {
+        level.spl_db = units_spl_db(running->sum_squares / running->frames);
+        level.peak_db = units_peak_db(running->peak);
+        for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
+            level.band_db[b] = b < meter->n_bands ? band_db(&sums, b, meter->rate_hz) : NAN;
+        sink->take(sink->context, &level);
+    }
+    memset(running, 0, sizeof *running);
+}
+
+/* Adds samples of one second: eight running sums, so that the compiler can take several at once. */
+static void add_samples(struct running *running, const float *restrict x, uint32_t n)
+{
+    double sums[LANES] = {0};
+    float peaks[LANES] = {0};
+    uint32_t i = 0;
+    for (; i + LANES <= n; i += LANES)
+        for (uint32_t j = 0; j < LANES; j++) {
+            float magnitude = fabsf(x[i + j]);
+            sums[j] += (double)magnitude * magnitude;
+            peaks[j] = peaks[j] > magnitude ? peaks[j] : magnitude;
+        }
+    for (; i < n; i++) {
+        sums[0] += (double)x[i] * x[i];
+        peaks[0] = peaks[0] > fabsf(x[i]) ? peaks[0] : fabsf(x[i]);
+    }
+    for (uint32_t j = 0; j < LANES; j++) {
+        running->sum_squares += sums[j];
+        running->peak = running->peak > peaks[j] ? running->peak : peaks[j];
+    }
+    running->frames += n;
+}
+
+/* Counts what is pending and not counted: it lies in one second. Called where a hop or a second ends, so that
+ * the sums are the same for any chunking. */
+static void count_pending(struct meter *meter)
+{
+    uint32_t n = meter->fill - meter->counted;
+    if (n == 0)
+        return;
+    uint64_t from = meter->next_frame - n;
+    struct running *running = &meter->seconds[from / meter->rate_hz % HELD];
+    if (running->frames == 0)
+        running->start_frame = from;
+    add_samples(running, meter->pending + meter->counted, n);
+    meter->counted = meter->fill;
+}
+
+void meter_push(struct meter *meter, const float *pascals, uint32_t n, const struct level_sink *sink)
+{
+    while (n) {
+        uint64_t left = meter->rate_hz - meter->next_frame % meter->rate_hz;
+        uint32_t take = n < meter->hop - meter->fill ? n : meter->hop - meter->fill;
+        take = take < left ? take : (uint32_t)left;
+        memcpy(meter->pending + meter->fill, pascals, take * sizeof *pascals);
+        meter->fill += take;
+        meter->next_frame += take;
+        pascals += take;
+        n -= take;
+        if (take == left || meter->fill == meter->hop)
+            count_pending(meter);
+        if (meter->fill < meter->hop)
+            continue;
+        decidecades_push(meter->decidecades, meter->pending);
+        meter->fill = meter->counted = 0;
+        while ((meter->next_second + 1) * meter->rate_hz <= decidecades_get_complete(meter->decidecades))
+            give(meter, sink);
+    }
+}
+
+void meter_finish(struct meter *meter, const struct level_sink *sink)
+{
+    count_pending(meter);
+    while (meter->next_second * meter->rate_hz < meter->next_frame)
+        give(meter, sink);
+    meter_reset(meter, meter->next_frame);
+}

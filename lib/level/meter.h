@@ -1,0 +1,50 @@
+/* Levels of one channel, one a second: SPL and peak from the samples, decidecades (level/decidecades.h).
+ *
+ * SPL is 10 lg of the mean square, peak 20 lg of the largest magnitude (ISO 18405:2017), both straight from
+ * the samples in double precision: a DC offset is part of them, and the peak is that of the samples, not of
+ * the wave between them. Seconds are [k rate, (k + 1) rate) in frame numbers.
+ *
+ * Call order: create; reset at the start and after each gap; push; finish before a reset or at the end;
+ * destroy. */
+#ifndef LEVEL_METER_H
+#define LEVEL_METER_H
+
+#include "base/status.h"
+#include "level/level.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define METER_SHORTEST_S 0.1 /* a second with less sound than this gives no level */
+
+/* The level of one second, in frames of the stream. */
+struct found_level {
+    uint64_t start_frame; /* of the first frame heard in the second */
+    uint64_t known_frame; /* the last frame needed to give it */
+    uint32_t frames;      /* heard in the second: the rate, or less beside a gap */
+    double spl_db, peak_db;
+    uint32_t n_bands;
+    double band_db[LEVEL_MAX_BANDS]; /* NAN where less than 1 / bandwidth of sound was analysed */
+    bool relative;
+};
+
+struct level_sink {
+    void (*take)(void *context, const struct found_level *level);
+    void *context;
+};
+
+struct meter;
+
+/* rate_hz: a whole number from 8,000 to 1,000,000, else STATUS_BAD_ARGUMENT; STATUS_NO_MEMORY. relative is
+ * copied into every level. The caller owns *out. */
+enum status meter_create(double rate_hz, bool relative, struct meter **out);
+void meter_destroy(struct meter *meter);
+/* Forgets the past; next_frame is the number of the next frame pushed. */
+void meter_reset(struct meter *meter, uint64_t next_frame);
+/* Takes n finite samples in pascals. Levels come at most 0.4 s of sound after their second, in order; they do
+ * not depend on how the sound is cut into pushes. */
+void meter_push(struct meter *meter, const float *pascals, uint32_t n, const struct level_sink *sink);
+/* Gives the seconds still held, the running one too when METER_SHORTEST_S of it was heard. Reset must follow.
+ */
+void meter_finish(struct meter *meter, const struct level_sink *sink);
+
+#endif
