@@ -6,6 +6,7 @@
 #define HOLD_S 0.25 /* of sound: the most that a decision waits for */
 #define HOLD_MARKS                                                                                           \
     16 /* so many agree to the frame: each is late by less than half a frame half of the time */
+#define USUAL_BINS 16
 #define SLOPE_SPAN_S 1.0  /* below it the nominal rate is better than a measured one */
 #define MAX_SLOPE 500e-6  /* a sound device's crystal is within a tenth of it; common practice, no source */
 #define LEAST_STEP_S 1e-3 /* a step without the driver's flag is a loss from here up */
@@ -136,12 +137,29 @@ static void accept(struct account *a, const struct ring_mark *mark, uint64_t los
     a->next_frame += lost + mark->n_frames - skip;
 }
 
+/* How far above the line the earliest point of a quarter of a second is wont to be: the median of the last
+ * ones. The held marks are as few, so that they are compared with their like and not with the earliest of
+ * all. */
+static double usual_least_s(const struct account *a)
+{
+    double sorted[USUAL_BINS];
+    uint32_t n = a->n_bins < USUAL_BINS ? a->n_bins : USUAL_BINS;
+    for (uint32_t i = 0; i < n; i++) {
+        double r = above_line(a, a->bins[a->n_bins - n + i]);
+        uint32_t k = i;
+        for (; k > 0 && sorted[k - 1] > r; k--)
+            sorted[k] = sorted[k - 1];
+        sorted[k] = r;
+    }
+    return n == 0 ? 0 : sorted[n / 2];
+}
+
 /* Decides what the held marks say. */
 static void decide(struct account *a)
 {
     if (a->n_held == 0)
         return;
-    double frames = round(a->held_least_s * a->rate_hz / (1 + a->slope));
+    double frames = round((a->held_least_s - usual_least_s(a)) * a->rate_hz / (1 + a->slope));
     uint64_t lost = 0;
     if (a->absent && frames < 0)
         a->skip = (uint64_t)-frames;
