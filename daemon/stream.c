@@ -84,8 +84,8 @@ static void take_event(void *context, const struct event *event)
 static void take_column(void *context, const struct column *column)
 {
     struct stream *stream = context;
-    if (stream->setup.listener.column)
-        stream->setup.listener.column(stream->setup.listener.context, stream->setup.number, column);
+    if (stream->setup.columns.take)
+        stream->setup.columns.take(stream->setup.columns.context, stream->setup.number, column);
 }
 
 static void take_block(void *context, const struct block *block)
@@ -188,6 +188,22 @@ static enum status take_piece(struct stream *stream, uint32_t max_frames)
     return STATUS_OK;
 }
 
+/* The input has ended, the watch has not: what it would have given is lost, by the monotonic clock. */
+static void go_on_without(struct stream *stream)
+{
+    const struct block_sink sink = {take_block, stream};
+    while (!atomic_load(&stream->stop)) {
+        clock_wait_until_ns(clock_monotonic_ns() + TIME_NS_PER_S / 4);
+        int64_t behind_ns = present_ns(stream) - time_of_frame(&stream->map, stream->next_frame);
+        if (behind_ns <= 0)
+            continue;
+        uint64_t lost = (uint64_t)((double)behind_ns * 1e-9 * stream->map.rate_hz);
+        blocks_push(stream->blocks, lost, NULL, 0, &sink);
+        stream->next_frame += lost;
+        note_state(stream, &(struct input_piece){.lost_before = lost});
+    }
+}
+
 static void *run_stream(void *context)
 {
     struct stream *stream = context;
@@ -198,15 +214,17 @@ static void *run_stream(void *context)
     enum status status = STATUS_OK;
     while (status == STATUS_OK && !atomic_load(&stream->stop))
         status = take_piece(stream, max_frames);
+    pthread_mutex_lock(&stream->lock);
+    stream->state.ended = status != STATUS_OK;
+    if (status != STATUS_OK && status != STATUS_END)
+        stream->state.status = status;
+    pthread_mutex_unlock(&stream->lock);
+    if (status != STATUS_OK && stream->setup.goes_on)
+        go_on_without(stream);
     blocks_finish(stream->blocks, &blocks);
     listen_finish(stream->listen, &events);
     merge_progress(stream->merge, stream->setup.number, listen_get_time(stream->listen));
     merge_end(stream->merge, stream->setup.number);
-    pthread_mutex_lock(&stream->lock);
-    stream->state.ended = true;
-    if (status != STATUS_OK && status != STATUS_END)
-        stream->state.status = status;
-    pthread_mutex_unlock(&stream->lock);
     return NULL;
 }
 

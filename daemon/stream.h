@@ -13,10 +13,9 @@
 
 struct stream;
 
-/* What a stream's thread tells besides events; called from that thread. */
-struct stream_listener {
-    void (*column)(void *context, uint32_t stream, const struct column *column);
-    void (*clock)(void *context, uint32_t stream, const struct time_map *map, int64_t change_ns);
+/* Where a stream's columns go, from its thread. */
+struct stream_columns {
+    void (*take)(void *context, uint32_t stream, const struct column *column);
     void *context;
 };
 
@@ -25,7 +24,8 @@ struct stream_setup {
     uint32_t run;                           /* from 1 */
     const struct stream_settings *settings; /* borrowed */
     const struct catalogue *catalogue;      /* borrowed */
-    struct stream_listener listener;        /* functions may be NULL */
+    struct stream_columns columns;          /* take may be NULL */
+    bool goes_on; /* when the input ends, time goes on as a gap, by the monotonic clock */
 };
 
 /* Opens the input, which says its facts; adds problems and gives the input's status when it cannot. */
@@ -52,9 +52,12 @@ struct stream_state {
     double heard_s;        /* sound taken in this run */
     double lost_s;         /* sound lost in this run */
     double cpu_s;          /* CPU time of its thread */
-    bool ended;
-    enum status status; /* STATUS_OK, or why the input ended badly */
-    char health[160];   /* in words; empty when there is nothing to say */
+    uint32_t map_changes;  /* how often the map was changed, since a clock drifted */
+    struct time_map map;   /* in force */
+    int64_t map_change_ns; /* of the last change: new less old */
+    bool ended;            /* its input has ended */
+    enum status status;    /* STATUS_OK, or why the input ended badly */
+    char health[160];      /* in words; empty when there is nothing to say */
 };
 
 /* From any thread. */
