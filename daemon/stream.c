@@ -108,9 +108,11 @@ static void change_map(struct stream *stream, int64_t change_ns)
     stream->map.anchor_ns = time_of_frame(&stream->map, stream->next_frame) + change_ns;
     stream->map.anchor_frame = stream->next_frame;
     listen_set_map(stream->listen, &stream->map);
-    if (stream->setup.listener.clock)
-        stream->setup.listener.clock(stream->setup.listener.context, stream->setup.number, &stream->map,
-                                     change_ns);
+    pthread_mutex_lock(&stream->lock);
+    stream->state.map = stream->map;
+    stream->state.map_change_ns = change_ns;
+    stream->state.map_changes++;
+    pthread_mutex_unlock(&stream->lock);
 }
 
 static void follow_clock(struct stream *stream, uint32_t n_frames)
