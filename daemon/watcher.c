@@ -1,0 +1,353 @@
+/* The watch's thread; see watcher.h. */
+#include "watcher.h"
+#include "base/time.h"
+#include "clock.h"
+#include "float_mode.h"
+#include "hearing.h"
+#include "record/entry.h"
+#include <math.h>
+#include <pthread.h>
+#include <stdatomic.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define PUBLISH_GAP_NS (TIME_NS_PER_S / 4)
+#define STALE_S 1.0 /* a live stream without sound for longer is not heard */
+
+struct watcher {
+    struct watcher_setup setup;
+    struct hearing_view *hearing; /* 100 kB, and read by nobody else */
+    struct watch_view *view;
+    unsigned next_note;
+    uint64_t note_counter;
+    uint32_t map_changes[SITE_MAX_STREAMS];
+    bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind;
+    bool changed; /* something that people should see at once */
+    int64_t published_ns;
+    pthread_t thread;
+    bool running;
+    atomic_bool ended;
+    pthread_mutex_t lock; /* guards state and ended_now */
+    pthread_cond_t ended_now;
+    struct watcher_state state;
+};
+
+enum status watcher_create(const struct watcher_setup *setup, struct watcher **out)
+{
+    struct watcher *watcher = calloc(1, sizeof *watcher);
+    if (!watcher)
+        return STATUS_NO_MEMORY;
+    watcher->setup = *setup;
+    watcher->hearing = calloc(1, sizeof *watcher->hearing);
+    watcher->view = calloc(1, sizeof *watcher->view);
+    if (!watcher->hearing || !watcher->view) {
+        free(watcher->hearing);
+        free(watcher->view);
+        free(watcher);
+        return STATUS_NO_MEMORY;
+    }
+    pthread_mutex_init(&watcher->lock, NULL);
+    pthread_cond_init(&watcher->ended_now, NULL);
+    *out = watcher;
+    return STATUS_OK;
+}
+
+static void keep_status(struct watcher *watcher, enum status status)
+{
+    if (status == STATUS_OK)
+        return;
+    pthread_mutex_lock(&watcher->lock);
+    if (watcher->state.status == STATUS_OK)
+        watcher->state.status = status;
+    pthread_mutex_unlock(&watcher->lock);
+}
+
+static void count(struct watcher *watcher, const struct outcome *outcome)
+{
+    pthread_mutex_lock(&watcher->lock);
+    struct watcher_state *state = &watcher->state;
+    state->n_calls += outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_CALL;
+    state->n_impulses += outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_IMPULSE;
+    if (outcome->kind == OUTCOME_CONTACT && outcome->as.contact.contact > state->n_contacts)
+        state->n_contacts = outcome->as.contact.contact;
+    state->n_advice += outcome->kind == OUTCOME_ADVICE;
+    pthread_mutex_unlock(&watcher->lock);
+}
+
+static void take_outcome(void *context, const struct outcome *outcome)
+{
+    struct watcher *watcher = context;
+    if (outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_NOTE)
+        watcher->note_counter = outcome->counter;
+    count(watcher, outcome);
+    hearing_take(watcher->hearing, outcome);
+    if (outcome->kind == OUTCOME_ADVICE) {
+        char id[FLOW_ID_SIZE];
+        flow_id(outcome->run, outcome->stream, "advice", outcome->counter, id);
+        hearing_add_unrecorded(watcher->hearing, id);
+    }
+    if (outcome->kind != OUTCOME_EVENT || outcome->as.event.kind == EVENT_CALL ||
+        outcome->as.event.kind == EVENT_NOTE)
+        watcher->changed = true;
+    keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
+}
+
+static void push(struct watcher *watcher, struct event *event)
+{
+    const struct outcome_sink sink = {take_outcome, watcher};
+    event->run = watcher->setup.run;
+    entry_round(event);
+    keep_status(watcher, watch_push(watcher->setup.watch, event, &sink));
+}
+
+/* Notes of the timetable that are due before or at a watch time. */
+static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
+{
+    while (watcher->next_note < watcher->setup.n_notes) {
+        const struct timed_note *timed = &watcher->setup.notes[watcher->next_note];
+        int64_t at_ns = time_from_s(timed->at_s);
+        if (at_ns > watch_ns)
+            return;
+        struct event event = {.kind = EVENT_NOTE, .known_ns = at_ns};
+        event.as.note = timed->note;
+        event.as.note.known_ns = event.as.note.occurred_ns = at_ns;
+        event.counter = watcher->note_counter + 1;
+        push(watcher, &event);
+        watcher->next_note++;
+    }
+}
+
+static void push_entered_note(struct watcher *watcher, struct event *event)
+{
+    event->as.note.known_ns = event->known_ns;
+    if (event->as.note.occurred_ns == 0 || event->as.note.occurred_ns > event->known_ns)
+        event->as.note.occurred_ns = event->known_ns;
+    event->counter = watcher->note_counter + 1;
+    push(watcher, event);
+    merge_note_taken(watcher->setup.merge, watcher->note_counter);
+}
+
+static void say_health(struct watcher *watcher, int64_t watch_ns, uint32_t stream, bool ok, const char *text)
+{
+    keep_status(watcher, recorder_health(watcher->setup.recorder, watch_ns, stream, ok, text));
+    watcher->changed = true;
+}
+
+static void look_at_stream(struct watcher *watcher, uint32_t i, int64_t watch_ns)
+{
+    struct stream_state state;
+    struct stream *stream = watcher->setup.streams[i];
+    struct hearing_stream *shown = &watcher->hearing->streams[i];
+    stream_get_state(stream, &state);
+    double age_s = state.last_sound_ns ? (double)(clock_monotonic_ns() - state.last_sound_ns) * 1e-9 : NAN;
+    bool was_hearing = shown->hearing;
+    shown->heard_ns = state.heard_ns;
+    shown->block_age_s = age_s;
+    shown->hearing = !state.ended && state.last_sound_ns && age_s < STALE_S;
+    snprintf(shown->health, sizeof shown->health, "%s",
+             *state.health ? state.health
+             : state.ended ? "the input has ended"
+                           : "");
+    if (state.map_changes != watcher->map_changes[i]) {
+        struct clock_facts facts = {
+            .map = &state.map,
+            .zero_unix_ns = watcher->setup.zero_unix_ns,
+            .offset_s = watcher->map_changes[i] ? time_to_s(state.map_change_ns) : NAN,
+            .source = "measured against the monotonic clock",
+            .reason = watcher->map_changes[i] ? "the input's clock drifted" : "first sound"};
+        watcher->map_changes[i] = state.map_changes;
+        keep_status(watcher, recorder_clock(watcher->setup.recorder, watch_ns, i + 1, &facts));
+    }
+    bool first = state.last_sound_ns == 0;
+    if (stream_get_facts(stream)->live && shown->hearing != was_hearing && !first)
+        say_health(watcher, watch_ns, i + 1, shown->hearing, shown->hearing ? "hearing" : shown->health);
+    if (!shown->hearing && !first)
+        hearing_add_fault(watcher->hearing, "CANNOT HEAR %s: %s", shown->name,
+                          *shown->health ? shown->health : "no sound arrives");
+    if (state.status != STATUS_OK && !watcher->said_ended[i]) {
+        watcher->said_ended[i] = true;
+        say_health(watcher, watch_ns, i + 1, false, status_text(state.status));
+    }
+}
+
+static void look_at_outbox(struct watcher *watcher, int64_t watch_ns)
+{
+    struct hearing_view *hearing = watcher->hearing;
+    struct outbox_state state;
+    outbox_get_state(watcher->setup.outbox, &state);
+    hearing->recording = state.recording;
+    snprintf(hearing->recording_text, sizeof hearing->recording_text, "%s", state.text);
+    hearing->committed_seq = state.committed_seq;
+    if (state.waiting == 0)
+        hearing->committed_ns = watch_ns;
+    for (uint32_t i = hearing->n_unrecorded; i > 0; i--)
+        if (outbox_is_committed(watcher->setup.outbox, hearing->unrecorded[i - 1]))
+            hearing_set_recorded(hearing, hearing->unrecorded[i - 1]);
+    if (!state.recording)
+        hearing_add_fault(hearing, "NOT RECORDING: %s", state.text);
+    if (!state.recording != watcher->said_not_recording) {
+        watcher->said_not_recording = !state.recording;
+        say_health(watcher, watch_ns, 0, state.recording, state.recording ? "recording again" : state.text);
+    }
+}
+
+static void publish(struct watcher *watcher, int64_t watch_ns)
+{
+    int64_t now_ns = clock_monotonic_ns();
+    bool due = now_ns - watcher->published_ns >= PUBLISH_GAP_NS;
+    if (!due && !watcher->changed)
+        return;
+    struct hearing_view *hearing = watcher->hearing;
+    hearing->n_faults = 0;
+    for (uint32_t i = 0; i < watcher->setup.n_streams; i++)
+        look_at_stream(watcher, i, watch_ns);
+    look_at_outbox(watcher, watch_ns);
+    uint32_t left_behind = merge_get_left_behind(watcher->setup.merge);
+    if ((left_behind != 0) != watcher->was_left_behind) {
+        watcher->was_left_behind = left_behind != 0;
+        say_health(watcher, watch_ns, 0, left_behind == 0,
+                   left_behind ? "a live stream lags and was left behind" : "all streams keep up");
+    }
+    if (left_behind)
+        hearing_add_fault(hearing, "A LIVE STREAM LAGS: its events come late");
+    if (watcher->setup.board) {
+        watch_get_view(watcher->setup.watch, watcher->view);
+        keep_status(watcher, board_publish(watcher->setup.board, watcher->view, hearing));
+    }
+    watcher->changed = false;
+    watcher->published_ns = now_ns;
+}
+
+static void keep_state(struct watcher *watcher, int64_t watch_ns)
+{
+    struct timespec cpu;
+    clock_gettime(CLOCK_THREAD_CPUTIME_ID, &cpu);
+    pthread_mutex_lock(&watcher->lock);
+    watcher->state.watch_ns = watch_ns;
+    watcher->state.progress_ns = clock_monotonic_ns();
+    watcher->state.cpu_s = (double)cpu.tv_sec + (double)cpu.tv_nsec * 1e-9;
+    pthread_mutex_unlock(&watcher->lock);
+}
+
+/* One step: an event, or time that has passed. */
+static enum status step(struct watcher *watcher)
+{
+    const struct outcome_sink sink = {take_outcome, watcher};
+    struct event event;
+    int64_t now_ns;
+    enum status status = merge_take(watcher->setup.merge, PUBLISH_GAP_NS, &event, &now_ns);
+    if (status == STATUS_OK) {
+        now_ns = event.known_ns;
+        push_due_notes(watcher, now_ns);
+        if (event.kind == EVENT_NOTE)
+            push_entered_note(watcher, &event);
+        else
+            push(watcher, &event);
+    } else {
+        push_due_notes(watcher, now_ns);
+        keep_status(watcher, watch_advance(watcher->setup.watch, now_ns, &sink));
+    }
+    keep_state(watcher, now_ns);
+    publish(watcher, now_ns);
+    return status;
+}
+
+static void *run_watch(void *context)
+{
+    struct watcher *watcher = context;
+    float_mode_flush_to_zero();
+    while (step(watcher) != STATUS_END)
+        ;
+    struct watcher_state state;
+    watcher_get_state(watcher, &state);
+    keep_status(watcher, recorder_finish(watcher->setup.recorder, state.watch_ns));
+    watcher->changed = true;
+    publish(watcher, state.watch_ns);
+    pthread_mutex_lock(&watcher->lock);
+    atomic_store(&watcher->ended, true);
+    pthread_cond_broadcast(&watcher->ended_now);
+    pthread_mutex_unlock(&watcher->lock);
+    return NULL;
+}
+
+static void name_streams(struct watcher *watcher)
+{
+    struct hearing_view *hearing = watcher->hearing;
+    hearing->unix_at_zero_ns = watcher->setup.zero_unix_ns;
+    hearing->recording = true;
+    hearing->n_streams = watcher->setup.n_streams;
+    for (uint32_t i = 0; i < watcher->setup.n_streams; i++) {
+        const struct input_facts *facts = stream_get_facts(watcher->setup.streams[i]);
+        struct hearing_stream *shown = &hearing->streams[i];
+        snprintf(shown->name, sizeof shown->name, "%s", watcher->setup.stream_settings[i].name);
+        snprintf(shown->input, sizeof shown->input, "%s", watcher->setup.stream_settings[i].input);
+        shown->rate_hz = facts->rate_hz;
+        shown->n_channels = facts->n_channels;
+        shown->block_age_s = NAN;
+    }
+}
+
+enum status watcher_start(struct watcher *watcher, const struct run_mark *mark)
+{
+    struct event event = {.kind = EVENT_RUN, .counter = 1, .known_ns = mark->outage_end_ns};
+    event.as.run_mark = *mark;
+    name_streams(watcher);
+    push(watcher, &event);
+    watcher->note_counter = 0;
+    if (pthread_create(&watcher->thread, NULL, run_watch, watcher) != 0)
+        return STATUS_SYSTEM;
+    watcher->running = true;
+    return STATUS_OK;
+}
+
+bool watcher_wait(struct watcher *watcher, double wait_s)
+{
+    struct timespec until;
+    clock_gettime(CLOCK_REALTIME, &until);
+    int64_t until_ns = (int64_t)until.tv_sec * TIME_NS_PER_S + until.tv_nsec + (int64_t)(wait_s * 1e9);
+    until = (struct timespec){.tv_sec = until_ns / TIME_NS_PER_S, .tv_nsec = until_ns % TIME_NS_PER_S};
+    pthread_mutex_lock(&watcher->lock);
+    int waited = 0;
+    while (!atomic_load(&watcher->ended) && waited == 0)
+        waited = pthread_cond_timedwait(&watcher->ended_now, &watcher->lock, &until);
+    pthread_mutex_unlock(&watcher->lock);
+    return atomic_load(&watcher->ended);
+}
+
+void watcher_stop(struct watcher *watcher)
+{
+    if (!watcher || !watcher->running)
+        return;
+    merge_stop(watcher->setup.merge);
+    pthread_join(watcher->thread, NULL);
+    watcher->running = false;
+}
+
+void watcher_destroy(struct watcher *watcher)
+{
+    if (!watcher)
+        return;
+    watcher_stop(watcher);
+    pthread_cond_destroy(&watcher->ended_now);
+    pthread_mutex_destroy(&watcher->lock);
+    free(watcher->hearing);
+    free(watcher->view);
+    free(watcher);
+}
+
+enum status watcher_take_note(struct watcher *watcher, const struct note *note, char out_id[FLOW_ID_SIZE])
+{
+    uint64_t counter = 0;
+    enum status status = merge_note(watcher->setup.merge, note, &counter);
+    if (status == STATUS_OK)
+        flow_id(watcher->setup.run, 0, "note", counter, out_id);
+    return status;
+}
+
+void watcher_get_state(struct watcher *watcher, struct watcher_state *out)
+{
+    pthread_mutex_lock(&watcher->lock);
+    *out = watcher->state;
+    pthread_mutex_unlock(&watcher->lock);
+}

@@ -1,0 +1,57 @@
+/* The watch's thread: takes events in order from the merge, lets the watch conclude, records and publishes.
+ */
+#ifndef WATCHER_H
+#define WATCHER_H
+
+#include "base/status.h"
+#include "http/board.h"
+#include "ledger/outbox.h"
+#include "merge.h"
+#include "recorder.h"
+#include "rule/watch.h"
+#include "settings/notes.h"
+#include "stream.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+struct watcher;
+
+/* Everything is borrowed for the life of the object. */
+struct watcher_setup {
+    struct merge *merge;
+    struct watch *watch;
+    struct recorder *recorder;
+    struct outbox *outbox;
+    struct board *board; /* NULL: nobody looks */
+    uint32_t run;
+    int64_t zero_unix_ns; /* UTC of watch time zero */
+    uint32_t n_streams;
+    struct stream *const *streams;
+    const struct stream_settings *stream_settings;
+    const struct timed_note *notes; /* in order; at_s is watch time */
+    unsigned n_notes;
+};
+
+enum status watcher_create(const struct watcher_setup *setup, struct watcher **out);
+/* Starts the thread. `mark` is the run's first event. */
+enum status watcher_start(struct watcher *watcher, const struct run_mark *mark);
+/* Waits until every stream has ended or watcher_stop was called elsewhere; false after wait_s. */
+bool watcher_wait(struct watcher *watcher, double wait_s);
+/* Stops the merge and waits for the thread: what is known goes out. */
+void watcher_stop(struct watcher *watcher);
+void watcher_destroy(struct watcher *watcher);
+
+/* From any thread: hands a note to the watch; see merge_note. */
+enum status watcher_take_note(struct watcher *watcher, const struct note *note, char out_id[FLOW_ID_SIZE]);
+
+/* From any thread. */
+struct watcher_state {
+    int64_t watch_ns;
+    double cpu_s;        /* of its thread */
+    int64_t progress_ns; /* monotonic time of its last step */
+    uint64_t n_calls, n_impulses, n_contacts, n_advice;
+    enum status status; /* STATUS_OK, or the first thing that went wrong inside */
+};
+void watcher_get_state(struct watcher *watcher, struct watcher_state *out);
+
+#endif
