@@ -154,6 +154,10 @@ static void bands_keep_the_class_1_mask(void **state)
         check_mask(rates[r], 8);
         check_mask(rates[r], LEVEL_FIRST_BAND + (int)decidecades_count(rates[r]) - 1);
     }
+    static const double more[] = {8000, 16000, 22050, 32000, 44100, 192000, 500000, 1000000};
+    for (int r = 0; test_length() == TEST_LONG && r < 8; r++)
+        for (uint32_t b = 0; b < decidecades_count(more[r]); b++)
+            check_mask(more[r], LEVEL_FIRST_BAND + (int)b);
 }
 
 /* White noise of variance 1 Pa2: a band holds bandwidth / (rate / 2) of it. The spread of each second's level
