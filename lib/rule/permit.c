@@ -34,6 +34,12 @@ static const char *const unknown_words[] = {
     [UNKNOWN_IGNORE] = "ignore",
 };
 
+static const char *const worth_words[] = {
+    [BREAK_WATCH_NOTHING] = "nothing",
+    [BREAK_WATCH_COUNTS] = "counts",
+    [BREAK_WATCH_STANDS] = "stands",
+};
+
 #define WORD_OF(table, value)                                                                                \
     ((size_t)(value) < sizeof(table) / sizeof((table)[0]) ? (table)[(size_t)(value)] : "unknown")
 
@@ -60,6 +66,11 @@ const char *permit_origin_text(enum zone_origin origin)
 const char *permit_unknown_text(enum unknown_policy policy)
 {
     return WORD_OF(unknown_words, policy);
+}
+
+const char *permit_break_watch_text(enum break_watch worth)
+{
+    return WORD_OF(worth_words, worth);
 }
 
 /* Counts problems and keeps the one that is wanted. */
@@ -170,6 +181,9 @@ static void check_timers(struct search *search, const struct permit *permit)
     if (!(max >= min && max > 0))
         problem(search, "the soft start's longest time is %g minutes; allowed: at least the least time", max);
     need_minutes(search, "the break", permit->break_minutes);
+    if (!(permit->pre_watch_hole_minutes >= 0))
+        problem(search, "a hole in the watch of %g minutes; allowed: at least 0",
+                permit->pre_watch_hole_minutes);
     if (!(permit->confirm_countdown_s >= 0 && permit->confirm_countdown_s <= 600))
         problem(search, "the observer's countdown is %g s; allowed: 0 to 600", permit->confirm_countdown_s);
     if (!(permit->p_inside_prepare > 0 && permit->p_inside_prepare <= permit->p_inside_act &&

@@ -34,9 +34,16 @@ enum value_mark {
     MARK_INVENTED
 };
 
+/* What a watch that was kept through a break is worth afterwards. */
+enum break_watch {
+    BREAK_WATCH_NOTHING, /* the pre-watch begins anew when the break has become too long */
+    BREAK_WATCH_COUNTS,  /* the watch kept since the source fell silent counts towards it */
+    BREAK_WATCH_STANDS   /* a watch kept without a hole through work and break stands for it */
+};
+
 struct permit_value {
     char key[PERMIT_NAME_SIZE];
-    char text[PERMIT_NAME_SIZE]; /* the value as written */
+    char text[PERMIT_TEXT_SIZE]; /* the value as written */
     char source[PERMIT_TEXT_SIZE];
     enum value_mark mark;
 };
@@ -68,6 +75,7 @@ struct permit {
 
     double pre_watch_minutes;
     bool pre_watch_visual, pre_watch_acoustic; /* which watches must be kept for it to accrue */
+    double pre_watch_hole_minutes; /* a longer hole in the watch starts it anew; 0: as long as a break */
     char pre_watch_clause[PERMIT_TEXT_SIZE];
 
     uint32_t n_zones;
@@ -82,7 +90,9 @@ struct permit {
     char soft_start_clause[PERMIT_TEXT_SIZE];
     bool stop_if_possible_else_hold; /* during soft start: 'stop if possible, otherwise do not increase' */
 
-    double break_minutes; /* longer silence is a break that needs pre-watch and soft start again */
+    double break_minutes;     /* longer silence is a break that needs pre-watch and soft start again */
+    bool break_limit_resumes; /* after silence of exactly this length the source may still resume */
+    enum break_watch break_watch;
     char break_clause[PERMIT_TEXT_SIZE];
 
     double confirm_countdown_s; /* 0 where the text says immediate */
@@ -106,6 +116,7 @@ const char *permit_action_text(enum permit_action action);
 const char *permit_activity_text(enum permit_activity activity); /* "piling", "seismic", "explosives" */
 const char *permit_origin_text(enum zone_origin origin);         /* "pile", "array centre" ... */
 const char *permit_unknown_text(enum unknown_policy policy);     /* "inside", "ask observer", "ignore" */
+const char *permit_break_watch_text(enum break_watch worth);     /* "nothing", "counts", "stands" */
 const char *permit_mark_text(enum value_mark mark);              /* "read", "secondary", "memory, high" ... */
 
 #endif
