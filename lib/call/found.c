@@ -15,6 +15,7 @@ const char *rejection_text(enum rejection rejection)
         [REJECT_MACHINE_RHYTHM] = "machine rhythm",
         [REJECT_OWN_SOURCE] = "own source",
         [REJECT_TOO_MANY] = "too many at once",
+        [REJECT_PART_OF_ANOTHER] = "part of another call",
     };
     return (unsigned)rejection < REJECT_COUNT ? names[rejection] : "unknown";
 }

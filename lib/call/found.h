@@ -34,6 +34,7 @@ enum rejection {
     REJECT_MACHINE_RHYTHM,
     REJECT_OWN_SOURCE,
     REJECT_TOO_MANY,
+    REJECT_PART_OF_ANOTHER, /* a harmonic or a piece of a call that was found already */
     REJECT_COUNT
 };
 
