@@ -80,8 +80,8 @@ $(BUILD)/hushwatchd: $(BUILD)/daemon/hushwatchd.o $(ARCHIVES)
 	$(CC) $(LDFLAGS) -o $@ $^ $(DAEMON_LIBS)
 $(BUILD)/hushwatch: $(BUILD)/daemon/hushwatch.o $(ARCHIVES)
 	$(CC) $(LDFLAGS) -o $@ $^ $(DAEMON_LIBS)
-$(BUILD)/hushwatch-capture: $(BUILD)/daemon/capture/hushwatch-capture.o $(BUILD)/libhushwatch.a
-	$(CC) $(LDFLAGS) -o $@ $^ -lportaudio $(LIB_LIBS)
+$(BUILD)/hushwatch-capture: $(patsubst %.c,$(BUILD)/%.o,$(wildcard daemon/capture/*.c)) $(BUILD)/libhushwatch.a
+	$(CC) $(LDFLAGS) -o $@ $^ -lportaudio -lm
 
 # ---- tests: every C file in a test folder is a program, every .sh and .py in it a script
 $(BUILD)/tests/%: $(BUILD)/tests/%.o $(BUILD)/libsupport.a $(ARCHIVES)
@@ -91,7 +91,7 @@ $(BUILD)/libasound_module_pcm_feed.so: tests/support/pcm_feed.c
 	@mkdir -p $(@D)
 	gcc -O2 -std=gnu11 -shared -fPIC -DPIC $< -o $@ -lasound
 
-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BUILD)/libasound_module_pcm_feed.so
+tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BUILD)/tests/browser/board_server $(BUILD)/libasound_module_pcm_feed.so
 check: install-test-needs
 	@$(MAKE) --no-print-directory -j2 tests
 	@/usr/bin/python3 tests/support/run.py --build $(BUILD) $(ONLY)

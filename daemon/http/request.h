@@ -1,0 +1,71 @@
+/* One request: checked before any route sees it. */
+#ifndef HTTP_REQUEST_H
+#define HTTP_REQUEST_H
+
+#include "http/connections.h"
+#include "http/desk.h"
+#include "http/events.h"
+#include "http/server.h"
+#include <microhttpd.h>
+#include <pthread.h>
+#include <stdatomic.h>
+#include <stdbool.h>
+
+/* What all requests share. */
+struct http {
+    struct MHD_Daemon *daemon;
+    int listen_fd;
+    uint32_t port;
+    struct board *board;
+    struct connections *connections;
+    struct events *events;
+    struct desk *desk;
+    uint32_t n_hosts;
+    char hosts[HTTP_MAX_HOSTS][NOTE_NAME_SIZE];
+    pthread_t tender;
+    bool has_tender;
+    atomic_bool stopping;
+};
+
+struct request {
+    struct http *http;
+    struct MHD_Connection *connection;
+    const struct route *route;
+    bool too_large;
+    bool submitted; /* the note is with the watch, or was */
+    size_t body_length;
+    char body[HTTP_MAX_BODY];
+    struct desk_item item;
+};
+
+/* One line a route (routes.c). */
+struct route {
+    const char *method, *path;
+    enum MHD_Result (*answer)(struct request *request);
+};
+
+/* The table, closed by a NULL path. */
+extern const struct route http_routes[];
+
+/* Queues an answer with the headers that every answer has; the body is copied. */
+enum MHD_Result http_answer(struct MHD_Connection *connection, unsigned code, const char *type,
+                            const void *body, size_t length);
+/* A refusal as JSON: error, field, allowed; the last two may be NULL. */
+enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, const char *error,
+                            const char *field, const char *allowed);
+/* Adds the headers that every answer has. */
+void http_add_headers(struct MHD_Response *response);
+
+/* Whether a Host header names this machine's loopback or a configured host. */
+bool http_host_allowed(const struct http *http, const char *host);
+
+/* The library's callbacks. */
+enum MHD_Result http_handle(void *context, struct MHD_Connection *connection, const char *url,
+                            const char *method, const char *version, const char *upload, size_t *upload_size,
+                            void **request_context);
+void http_completed(void *context, struct MHD_Connection *connection, void **request_context,
+                    enum MHD_RequestTerminationCode why);
+void http_connection_changed(void *context, struct MHD_Connection *connection, void **socket_context,
+                             enum MHD_ConnectionNotificationCode what);
+
+#endif
