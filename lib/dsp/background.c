@@ -1,0 +1,131 @@
+/* Adaptive background of a spectrum; see background.h. */
+#include "dsp/background.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define QUANTILE 0.3
+#define QUANTILE_OF_MEAN 0.35667 /* -ln(1 - 0.3): the quantile of an exponential with mean 1 */
+#define MEDIAN_OF_MEAN 0.69315F  /* ln 2 */
+#define RISE_DB_S 0.5            /* at which a bin that is always above goes up */
+#define FIRST_STEP_DB 12.0       /* of the first frames; the n-th takes a share of it */
+#define READY_S 1.0
+#define STRETCH 32            /* bins whose median over frequency tells broadband sound */
+#define BROADBAND_RATIO 1.41F /* over the mean; 1.5 dB */
+
+struct background {
+    uint32_t n_bins;
+    double frames_per_s, step_db;
+    uint64_t n_frames;
+    float *quantile; /* [n_bins] */
+};
+
+enum status background_create(uint32_t n_bins, double frames_per_s, struct background **out)
+{
+    if (n_bins == 0 || !(frames_per_s > 0))
+        return STATUS_BAD_ARGUMENT;
+    struct background *background = calloc(1, sizeof *background);
+    float *quantile = calloc(n_bins, sizeof *quantile);
+    if (!background || !quantile) {
+        free(background);
+        free(quantile);
+        return STATUS_NO_MEMORY;
+    }
+    background->n_bins = n_bins;
+    background->frames_per_s = frames_per_s;
+    background->step_db = RISE_DB_S / (QUANTILE * frames_per_s);
+    background->quantile = quantile;
+    *out = background;
+    return STATUS_OK;
+}
+
+void background_destroy(struct background *background)
+{
+    if (background)
+        free(background->quantile);
+    free(background);
+}
+
+void background_reset(struct background *background)
+{
+    background->n_frames = 0;
+}
+
+bool background_is_ready(const struct background *background)
+{
+    return (double)background->n_frames >= READY_S * background->frames_per_s;
+}
+
+void background_raise(struct background *background, uint32_t bin, float power)
+{
+    float quantile = power * (float)QUANTILE_OF_MEAN;
+    if (bin < background->n_bins && background->quantile[bin] < quantile)
+        background->quantile[bin] = quantile;
+}
+
+/* The first frame: every bin starts from the mean over its neighbours, which is nearer than its own power. */
+static void start(struct background *background, const float *power)
+{
+    const uint32_t reach = 4, n = background->n_bins;
+    for (uint32_t k = 0; k < n; k++) {
+        uint32_t low = k > reach ? k - reach : 0, high = k + reach < n ? k + reach : n - 1;
+        double sum = 0;
+        for (uint32_t j = low; j <= high; j++)
+            sum += power[j];
+        background->quantile[k] = (float)(QUANTILE_OF_MEAN * sum / (high - low + 1) + 1e-30);
+    }
+}
+
+static void learn(struct background *background, const float *power)
+{
+    double step_db = fmax(background->step_db, FIRST_STEP_DB / (double)(background->n_frames + 2));
+    const float up = (float)pow(10, QUANTILE * step_db / 10);
+    const float down = (float)pow(10, -(1 - QUANTILE) * step_db / 10);
+    float *quantile = background->quantile;
+    for (uint32_t k = 0; k < background->n_bins; k++)
+        quantile[k] = fmaxf(quantile[k] * (power[k] > quantile[k] ? up : down), 1e-30F);
+}
+
+/* Median of n <= STRETCH numbers by insertion; only called for the rare broadband frames. */
+static float median(const float *ratio, uint32_t n)
+{
+    float sorted[STRETCH];
+    for (uint32_t i = 0; i < n; i++) {
+        uint32_t j = i;
+        for (; j > 0 && sorted[j - 1] > ratio[i]; j--)
+            sorted[j] = sorted[j - 1];
+        sorted[j] = ratio[i];
+    }
+    return sorted[n / 2];
+}
+
+static void raise_broadband(const float *power, float *level, uint32_t n)
+{
+    uint32_t n_above = 0;
+    for (uint32_t k = 0; k < n; k++)
+        n_above += power[k] > BROADBAND_RATIO * level[k];
+    if (n < 8 || 2 * n_above <= n)
+        return;
+    float ratio[STRETCH];
+    for (uint32_t k = 0; k < n; k++)
+        ratio[k] = power[k] / level[k];
+    float gain = fmaxf(1, median(ratio, n) / MEDIAN_OF_MEAN);
+    for (uint32_t k = 0; k < n; k++)
+        level[k] *= gain;
+}
+
+void background_push(struct background *background, const float *power, float *out_background)
+{
+    const uint32_t n = background->n_bins;
+    if (background->n_frames == 0)
+        start(background, power);
+    for (uint32_t k = 0; k < n; k++)
+        out_background[k] = background->quantile[k] * (float)(1 / QUANTILE_OF_MEAN);
+    const uint32_t n_stretches = (n + STRETCH - 1) / STRETCH;
+    for (uint32_t i = 0; i < n_stretches; i++) {
+        uint32_t low = n * i / n_stretches, high = n * (i + 1) / n_stretches;
+        raise_broadband(power + low, out_background + low, high - low);
+    }
+    learn(background, power);
+    background->n_frames++;
+}
