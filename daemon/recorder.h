@@ -24,7 +24,10 @@ enum status recorder_begin(struct recorder *recorder, const struct run_mark *mar
                            const struct run_facts *facts, const struct permit *permit,
                            const char *permit_text);
 
-/* One outcome of the watch. STATUS_NO_MEMORY, or what the outbox says. */
+/* The id within a body, which holds exactly one; STATUS_NOT_FOUND. */
+enum status recorder_id_of(const char *body, char out[FLOW_ID_SIZE]);
+
+/* One outcome of the watch. STATUS_NO_MEMORY. */
 enum status recorder_take(struct recorder *recorder, const struct outcome *outcome);
 
 /* Marks that the daemon makes itself, at a watch time. */

@@ -28,9 +28,11 @@ struct watcher {
     pthread_t thread;
     bool running;
     atomic_bool ended;
-    pthread_mutex_t lock; /* guards state and ended_now */
+    pthread_mutex_t lock; /* guards state, ended_now and committed */
     pthread_cond_t ended_now;
     struct watcher_state state;
+    uint32_t n_committed; /* advice that reached the disk and is not looked at yet */
+    char committed[BOARD_MAX_UNRECORDED][FLOW_ID_SIZE];
 };
 
 enum status watcher_create(const struct watcher_setup *setup, struct watcher **out)
@@ -171,25 +173,49 @@ static void look_at_stream(struct watcher *watcher, uint32_t i, int64_t watch_ns
     }
 }
 
+/* Which advice has reached the disk since the last look. */
+static void look_at_committed(struct watcher *watcher)
+{
+    pthread_mutex_lock(&watcher->lock);
+    for (uint32_t i = 0; i < watcher->n_committed; i++)
+        hearing_set_recorded(watcher->hearing, watcher->committed[i]);
+    watcher->n_committed = 0;
+    pthread_mutex_unlock(&watcher->lock);
+}
+
 static void look_at_outbox(struct watcher *watcher, int64_t watch_ns)
 {
     struct hearing_view *hearing = watcher->hearing;
-    struct outbox_state state;
-    outbox_get_state(watcher->setup.outbox, &state);
-    hearing->recording = state.recording;
-    snprintf(hearing->recording_text, sizeof hearing->recording_text, "%s", state.text);
-    hearing->committed_seq = state.committed_seq;
-    if (state.waiting == 0)
+    struct outbox_view view;
+    look_at_committed(watcher);
+    outbox_get_view(watcher->setup.outbox, &view);
+    bool well = view.recording && view.state == OUTBOX_OK;
+    hearing->recording = well;
+    snprintf(hearing->recording_text, sizeof hearing->recording_text, "%.*s", BOARD_LINE_SIZE - 1,
+             view.problem);
+    hearing->committed_seq = view.last_seq;
+    if (view.n_waiting == 0) {
         hearing->committed_ns = watch_ns;
-    for (uint32_t i = hearing->n_unrecorded; i > 0; i--)
-        if (outbox_is_committed(watcher->setup.outbox, hearing->unrecorded[i - 1]))
-            hearing_set_recorded(hearing, hearing->unrecorded[i - 1]);
-    if (!state.recording)
-        hearing_add_fault(hearing, "NOT RECORDING: %s", state.text);
-    if (!state.recording != watcher->said_not_recording) {
-        watcher->said_not_recording = !state.recording;
-        say_health(watcher, watch_ns, 0, state.recording, state.recording ? "recording again" : state.text);
+        hearing->n_unrecorded = 0;
     }
+    if (!well)
+        hearing_add_fault(hearing, "%s: %s",
+                          view.recording ? "THE DISK DOES NOT TAKE ENTRIES" : "NOT RECORDING", view.problem);
+    if (!well != watcher->said_not_recording) {
+        watcher->said_not_recording = !well;
+        say_health(watcher, watch_ns, 0, well, well ? "entries reach the disk again" : view.problem);
+    }
+}
+
+void watcher_set_committed(void *context, const struct ledger_line *lines, size_t n)
+{
+    struct watcher *watcher = context;
+    pthread_mutex_lock(&watcher->lock);
+    for (size_t i = 0; i < n; i++)
+        if (strcmp(lines[i].kind, "advice") == 0 && watcher->n_committed < BOARD_MAX_UNRECORDED &&
+            recorder_id_of(lines[i].body, watcher->committed[watcher->n_committed]) == STATUS_OK)
+            watcher->n_committed++;
+    pthread_mutex_unlock(&watcher->lock);
 }
 
 static void publish(struct watcher *watcher, int64_t watch_ns)

@@ -44,6 +44,10 @@ void watcher_destroy(struct watcher *watcher);
 /* From any thread: hands a note to the watch; see merge_note. */
 enum status watcher_take_note(struct watcher *watcher, const struct note *note, char out_id[FLOW_ID_SIZE]);
 
+/* From the writer's thread: lines that are on the disk; context is the watcher. For outbox_setup.committed.
+ */
+void watcher_set_committed(void *context, const struct ledger_line *lines, size_t n);
+
 /* From any thread. */
 struct watcher_state {
     int64_t watch_ns;
