@@ -15,12 +15,14 @@ static const double pi = 3.14159265358979323846;
 
 struct stage {
     uint32_t factor;
-    uint32_t n_taps; /* a multiple of LANES: the filter has zeros in front */
+    uint32_t n_taps; /* a multiple of LANES: the filter has zeros in front. Half-band: of one side, folded */
     uint32_t delay;  /* in samples of its input */
     uint32_t phase;  /* input samples until the next output */
     uint32_t n_held; /* in buffer */
+    uint32_t n_odd;  /* in odd */
     float *taps;     /* [n_taps] */
-    float *buffer;   /* [n_taps + PIECE]: the last n_taps - 1 samples, then the new ones */
+    float *buffer;   /* the last samples, then the new ones. Half-band: those with an even number */
+    float *odd;      /* half-band only: those with an odd number */
     float *out;      /* [PIECE + 1] */
 };
 
@@ -41,43 +43,71 @@ static double bessel_i0(double x)
     return sum;
 }
 
-/* Low-pass of the Kaiser window method: edges in cycles per sample. The number of taps is odd, so that the
- * delay is whole. */
+/* Tap at x samples from the middle of a low-pass of the Kaiser window method; cut in cycles per sample. */
+static double kaiser_tap(double x, double half, double cut)
+{
+    double beta = 0.1102 * (ATTENUATION_DB - 8.7), r = x / (half + 1);
+    double sinc = x == 0 ? 2 * cut : sin(2 * pi * cut * x) / (pi * x);
+    return sinc * bessel_i0(beta * sqrt(1 - r * r)) / bessel_i0(beta);
+}
+
+/* Taps on each side of the middle for edges in cycles per sample. */
+static uint32_t half_length(double pass, double stop)
+{
+    return (uint32_t)ceil((ATTENUATION_DB - 8) / (2.285 * 2 * pi * (stop - pass)) / 2);
+}
+
+static bool make_buffers(struct stage *stage, size_t n_buffer, size_t n_odd)
+{
+    stage->taps = calloc(stage->n_taps, sizeof *stage->taps);
+    stage->buffer = calloc(n_buffer, sizeof *stage->buffer);
+    stage->odd = calloc(n_odd, sizeof *stage->odd);
+    stage->out = calloc(PIECE + 1, sizeof *stage->out);
+    return stage->taps && stage->buffer && stage->odd && stage->out;
+}
+
+/* The number of taps is odd, so that the delay is whole. */
 static bool design_stage(struct stage *stage, double pass, double stop)
 {
-    double beta = 0.1102 * (ATTENUATION_DB - 8.7);
-    double width = 2 * pi * (stop - pass);
-    uint32_t half = (uint32_t)ceil((ATTENUATION_DB - 8) / (2.285 * width) / 2);
-    uint32_t n = 2 * half + 1;
+    uint32_t half = half_length(pass, stop), n = 2 * half + 1;
     stage->n_taps = (n + LANES - 1) / LANES * LANES;
     stage->delay = half;
-    stage->taps = calloc(stage->n_taps, sizeof *stage->taps);
-    stage->buffer = calloc(stage->n_taps + PIECE, sizeof *stage->buffer);
-    stage->out = calloc(PIECE + 1, sizeof *stage->out);
-    if (!stage->taps || !stage->buffer || !stage->out)
+    if (!make_buffers(stage, stage->n_taps + PIECE, 1))
         return false;
-    double cut = (pass + stop) / 2, sum = 0;
-    for (int turn = 0; turn < 2; turn++) /* first the sum, for a gain of 1 at 0 Hz */
-        for (uint32_t i = 0; i < n; i++) {
-            double x = (double)i - half, r = x / half;
-            double sinc = x == 0 ? 2 * cut : sin(2 * pi * cut * x) / (pi * x);
-            double tap = sinc * bessel_i0(beta * sqrt(fmax(0, 1 - r * r))) / bessel_i0(beta);
-            if (turn == 0)
-                sum += tap;
-            else
-                stage->taps[stage->n_taps - n + i] = (float)(tap / sum);
-        }
+    double sum = 0;
+    for (uint32_t i = 0; i < n; i++)
+        sum += kaiser_tap((double)i - half, half, (pass + stop) / 2);
+    for (uint32_t i = 0; i < n; i++)
+        stage->taps[stage->n_taps - n + i] =
+            (float)(kaiser_tap((double)i - half, half, (pass + stop) / 2) / sum);
     return true;
 }
 
-/* Prime factors, the largest first; two 2s become a 4 unless they are the last (fewer, shorter filters).
+/* A factor of 2 has its edges even about a quarter of the input rate: but for the middle tap, which is 1/2,
+ * every other tap is 0, and the rest are even about the middle. */
+static bool design_half_band(struct stage *stage, double pass)
+{
+    stage->n_taps = half_length(pass, 0.5 - pass) / 2 + 1;
+    uint32_t half = 2 * stage->n_taps - 1;
+    stage->delay = half;
+    if (!make_buffers(stage, 2 * stage->n_taps + PIECE, 2 * stage->n_taps + PIECE))
+        return false;
+    double sum = 0;
+    for (uint32_t k = 0; k < stage->n_taps; k++)
+        sum += 2 * kaiser_tap(2 * k + 1, half, 0.25);
+    for (uint32_t k = 0; k < stage->n_taps; k++)
+        stage->taps[k] = (float)(0.5 * kaiser_tap(2 * k + 1, half, 0.25) / sum);
+    return true;
+}
+
+/* Prime factors, the largest first: 2s are the cheapest where the filter is long.
  * Returns 0 where a prime is too large. */
 static uint32_t split_factor(uint32_t factor, uint32_t out[MAX_STAGES])
 {
-    static const uint32_t sizes[] = {13, 11, 7, 5, 3, 4, 2};
+    static const uint32_t sizes[] = {13, 11, 7, 5, 3, 2};
     uint32_t n = 0;
     for (unsigned i = 0; i < sizeof sizes / sizeof sizes[0]; i++)
-        while (factor % sizes[i] == 0 && !(sizes[i] == 4 && factor == 4)) {
+        while (factor % sizes[i] == 0) {
             factor /= sizes[i];
             out[n++] = sizes[i];
         }
@@ -86,9 +116,11 @@ static uint32_t split_factor(uint32_t factor, uint32_t out[MAX_STAGES])
 
 static void reset_stage(struct stage *stage)
 {
-    memset(stage->buffer, 0, (stage->n_taps + PIECE) * sizeof *stage->buffer);
-    stage->n_held = stage->n_taps - 1;
     stage->phase = 0;
+    stage->n_held = stage->factor == 2 ? 2 * stage->n_taps - 1 : stage->n_taps - 1;
+    stage->n_odd = stage->factor == 2 ? stage->n_taps : 0;
+    memset(stage->buffer, 0, stage->n_held * sizeof *stage->buffer);
+    memset(stage->odd, 0, stage->n_odd * sizeof *stage->odd);
 }
 
 enum status decimator_create(uint32_t factor, struct decimator **out)
@@ -107,7 +139,10 @@ enum status decimator_create(uint32_t factor, struct decimator **out)
         struct stage *stage = &decimator->stages[i];
         stage->factor = factors[i];
         double out_rate = in_rate / factors[i];
-        if (!design_stage(stage, PASS_BAND_END / in_rate, (out_rate - PASS_BAND_END) / in_rate)) {
+        bool good = factors[i] == 2
+                        ? design_half_band(stage, PASS_BAND_END / in_rate)
+                        : design_stage(stage, PASS_BAND_END / in_rate, (out_rate - PASS_BAND_END) / in_rate);
+        if (!good) {
             decimator_destroy(decimator);
             return STATUS_NO_MEMORY;
         }
@@ -133,6 +168,48 @@ static float dot(const float *a, const float *b, uint32_t n)
         for (uint32_t j = 0; j < LANES; j++)
             lanes[j] += a[i + j] * b[i + j];
     return ((lanes[0] + lanes[4]) + (lanes[1] + lanes[5])) + ((lanes[2] + lanes[6]) + (lanes[3] + lanes[7]));
+}
+
+/* Output i of a half-band stage: even and odd point to the oldest samples that output 0 needs. The order of
+ * the sum is the same for every output, alone or in a tile. */
+static void run_half_band(const struct stage *stage, const float *even, const float *odd, uint32_t n,
+                          float *out)
+{
+    const uint32_t n_taps = stage->n_taps;
+    uint32_t i = 0;
+    for (; i + LANES <= n; i += LANES) {
+        float sum[LANES];
+        for (uint32_t j = 0; j < LANES; j++)
+            sum[j] = 0.5F * odd[i + j];
+        for (uint32_t k = 0; k < n_taps; k++) {
+            const float *early = even + i + n_taps - 1 - k, *late = even + i + n_taps + k;
+            for (uint32_t j = 0; j < LANES; j++)
+                sum[j] += stage->taps[k] * (early[j] + late[j]);
+        }
+        memcpy(out + i, sum, sizeof sum);
+    }
+    for (; i < n; i++) {
+        float sum = 0.5F * odd[i];
+        for (uint32_t k = 0; k < n_taps; k++)
+            sum += stage->taps[k] * (even[i + n_taps - 1 - k] + even[i + n_taps + k]);
+        out[i] = sum;
+    }
+}
+
+static uint32_t push_half_band(struct stage *stage, const float *samples, uint32_t n, float *out)
+{
+    const uint32_t n_even = (n + 1 - stage->phase) / 2, n_odd = n - n_even;
+    float *even = stage->buffer + stage->n_held, *odd = stage->odd + stage->n_odd;
+    for (uint32_t i = 0; i < n_even; i++)
+        even[i] = samples[2 * i + stage->phase];
+    for (uint32_t i = 0; i < n_odd; i++)
+        odd[i] = samples[2 * i + 1 - stage->phase];
+    run_half_band(stage, stage->buffer, stage->odd, n_even, out);
+    stage->n_odd += n_odd - n_even;
+    memmove(stage->buffer, stage->buffer + n_even, stage->n_held * sizeof *stage->buffer);
+    memmove(stage->odd, stage->odd + n_even, stage->n_odd * sizeof *stage->odd);
+    stage->phase = (stage->phase + n) % 2;
+    return n_even;
 }
 
 /* At most PIECE samples; returns how many went to out. */
@@ -161,7 +238,8 @@ size_t decimator_push(struct decimator *decimator, const float *samples, size_t 
         n -= count;
         for (uint32_t i = 0; i < decimator->n_stages; i++) {
             struct stage *stage = &decimator->stages[i];
-            count = push_stage(stage, from, count, stage->out);
+            count = stage->factor == 2 ? push_half_band(stage, from, count, stage->out)
+                                       : push_stage(stage, from, count, stage->out);
             from = stage->out;
         }
         memcpy(out + n_out, from, count * sizeof *out);
@@ -182,6 +260,7 @@ void decimator_destroy(struct decimator *decimator)
     for (uint32_t i = 0; i < decimator->n_stages; i++) {
         free(decimator->stages[i].taps);
         free(decimator->stages[i].buffer);
+        free(decimator->stages[i].odd);
         free(decimator->stages[i].out);
     }
     free(decimator);
