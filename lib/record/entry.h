@@ -40,6 +40,13 @@ enum status entry_event(const char *kind, const char *body, int64_t watch_ns, st
  * watch at sea and a rerun work on the same event: after it, entry_event(entry_body(event)) is the event. */
 void entry_round(struct event *event);
 
+/* Whether an entry's texts have the form that this program writes: UTC, a known kind, one line of ASCII JSON
+ * with keys in byte order, an id of that kind, and for an input kind a body that entry_event reads.
+ * STATUS_BAD_FORMAT and a sentence for the first thing that is not so; STATUS_NO_MEMORY. Says nothing of the
+ * hash. */
+#define ENTRY_SENTENCE_SIZE 160
+enum status entry_check(const struct entry *entry, char out_sentence[ENTRY_SENTENCE_SIZE]);
+
 /* SHA-256, in lower-case hex, of: previous hash, newline, seq, newline, utc, newline, kind, newline, body.
  * The previous hash of the first entry is 64 zeros. */
 void entry_hash(const char *previous_hash, int64_t seq, const char *utc, const char *kind, const char *body,

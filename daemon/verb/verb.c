@@ -1,0 +1,8 @@
+/* The table of verbs. */
+#include "verb/verb.h"
+#include <stddef.h>
+
+const struct verb verbs[] = {
+    {"verify", "check that a ledger is as it was written", verb_verify},
+    {NULL, NULL, NULL},
+};
