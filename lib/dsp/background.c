@@ -8,8 +8,10 @@
 #define QUANTILE_OF_MEAN 0.35667 /* -ln(1 - 0.3): the quantile of an exponential with mean 1 */
 #define MEDIAN_OF_MEAN 0.69315F  /* ln 2 */
 #define RISE_DB_S 0.5            /* at which a bin that is always above goes up */
-#define FIRST_STEP_DB 12.0       /* of the first frames; the n-th takes a share of it */
+#define FIRST_STEP_DB 6.0        /* of the first frames, then of the n-th a share that falls with n */
 #define READY_S 1.0
+#define RESTART_RATIO 10.0F   /* a rise of all that is heard, while learning, begins anew */
+#define BROADBAND_SPEED 4.0   /* of learning, while all of a stretch has risen */
 #define STRETCH 32            /* bins whose median over frequency tells broadband sound */
 #define BROADBAND_RATIO 1.41F /* over the mean; 1.5 dB */
 
@@ -76,14 +78,38 @@ static void start(struct background *background, const float *power)
     }
 }
 
-static void learn(struct background *background, const float *power)
+/* Steps are large for a quarter of the time to get ready, then fall as 1 / n. */
+static double step_of(const struct background *background)
 {
-    double step_db = fmax(background->step_db, FIRST_STEP_DB / (double)(background->n_frames + 2));
+    double first = fmax(4, READY_S / 4 * background->frames_per_s);
+    return fmax(background->step_db, FIRST_STEP_DB * first / fmax(first, (double)background->n_frames));
+}
+
+/* How far the estimate may be off while it is young: twice its standard deviation, sqrt(step q (1 - q) / (2
+ * f)) of a stochastic approximation with f = 0.0575 per dB, the density of noise in dB at the quantile. */
+static float caution_of(const struct background *background, double step_db)
+{
+    const double scale = sqrt(QUANTILE * (1 - QUANTILE) / (2 * 0.0575));
+    return (float)pow(10, 2 * scale * (sqrt(step_db) - sqrt(background->step_db)) / 10);
+}
+
+static void learn(const float *power, float *quantile, uint32_t n, double step_db)
+{
     const float up = (float)pow(10, QUANTILE * step_db / 10);
     const float down = (float)pow(10, -(1 - QUANTILE) * step_db / 10);
-    float *quantile = background->quantile;
+    for (uint32_t k = 0; k < n; k++) {
+        float next = quantile[k] * (power[k] > quantile[k] ? up : down);
+        quantile[k] = next > 1e-30F ? next : 1e-30F;
+    }
+}
+
+/* While learning: whether most bins hold much more than was thought (the sound has only now begun). */
+static bool has_begun(const struct background *background, const float *power)
+{
+    uint32_t n_above = 0;
     for (uint32_t k = 0; k < background->n_bins; k++)
-        quantile[k] = fmaxf(quantile[k] * (power[k] > quantile[k] ? up : down), 1e-30F);
+        n_above += power[k] > RESTART_RATIO * (float)(1 / QUANTILE_OF_MEAN) * background->quantile[k];
+    return 2 * n_above > background->n_bins;
 }
 
 /* Median of n <= STRETCH numbers by insertion; only called for the rare broadband frames. */
@@ -99,33 +125,39 @@ static float median(const float *ratio, uint32_t n)
     return sorted[n / 2];
 }
 
-static void raise_broadband(const float *power, float *level, uint32_t n)
+/* Returns whether the stretch was raised. */
+static bool raise_broadband(const float *power, float *level, uint32_t n)
 {
     uint32_t n_above = 0;
     for (uint32_t k = 0; k < n; k++)
         n_above += power[k] > BROADBAND_RATIO * level[k];
     if (n < 8 || 2 * n_above <= n)
-        return;
+        return false;
     float ratio[STRETCH];
     for (uint32_t k = 0; k < n; k++)
         ratio[k] = power[k] / level[k];
     float gain = fmaxf(1, median(ratio, n) / MEDIAN_OF_MEAN);
     for (uint32_t k = 0; k < n; k++)
         level[k] *= gain;
+    return true;
 }
 
 void background_push(struct background *background, const float *power, float *out_background)
 {
-    const uint32_t n = background->n_bins;
+    const uint32_t n = background->n_bins, n_stretches = (n + STRETCH - 1) / STRETCH;
+    if (background->n_frames > 0 && !background_is_ready(background) && has_begun(background, power))
+        background->n_frames = 0;
     if (background->n_frames == 0)
         start(background, power);
-    for (uint32_t k = 0; k < n; k++)
-        out_background[k] = background->quantile[k] * (float)(1 / QUANTILE_OF_MEAN);
-    const uint32_t n_stretches = (n + STRETCH - 1) / STRETCH;
+    const double step_db = step_of(background);
+    const float caution = caution_of(background, step_db);
     for (uint32_t i = 0; i < n_stretches; i++) {
         uint32_t low = n * i / n_stretches, high = n * (i + 1) / n_stretches;
-        raise_broadband(power + low, out_background + low, high - low);
+        float *quantile = background->quantile + low;
+        for (uint32_t k = low; k < high; k++)
+            out_background[k] = background->quantile[k] * (float)(1 / QUANTILE_OF_MEAN) * caution;
+        bool raised = raise_broadband(power + low, out_background + low, high - low);
+        learn(power + low, quantile, high - low, raised ? BROADBAND_SPEED * step_db : step_db);
     }
-    learn(background, power);
     background->n_frames++;
 }

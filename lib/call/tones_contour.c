@@ -1,0 +1,143 @@
+/* Traces a path back and measures it; see tones_trace.h. */
+#include "call/tones_field.h"
+#include <math.h>
+#include <stddef.h>
+
+#define FLANK 2 /* bins beside a tone's that hold its power (Hann) */
+
+static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
+{
+    return history + (size_t)tracer_row(tracer, frame) * tracer->n_bins;
+}
+
+/* Frequency of the peak near bin k: parabola through the logarithms of three cells (Smith and Serra 1987). */
+static double refine_hz(const struct tracer *tracer, const float *power, uint32_t k)
+{
+    double shift = 0;
+    if (k > 0 && k + 1 < tracer->n_bins) {
+        double a = log(power[k - 1] + 1e-30), b = log(power[k] + 1e-30), c = log(power[k + 1] + 1e-30);
+        double bend = a - 2 * b + c;
+        if (bend < 0)
+            shift = fmin(fmax(0.5 * (a - c) / bend, -0.5), 0.5);
+    }
+    return (tracer->first_bin + k + shift) * tracer->bin_hz;
+}
+
+/* Mean power of the cells beside the tone's, on both sides where the band has them. */
+static double power_beside(const struct tracer *tracer, const float *power, uint32_t k)
+{
+    double sum = 0;
+    uint32_t n = 0;
+    for (uint32_t d = FLANK + 1; d <= FLANK + 3; d++) {
+        if (k >= d) {
+            sum += power[k - d];
+            n++;
+        }
+        if (k + d < tracer->n_bins) {
+            sum += power[k + d];
+            n++;
+        }
+    }
+    return n ? sum / n : 0;
+}
+
+/* Power of the tone in a frame: its cells less the background. */
+static double tone_power(const struct tracer *tracer, const float *power, const float *snr, uint32_t k)
+{
+    double sum = 0, noise = 0;
+    for (uint32_t j = k > FLANK ? k - FLANK : 0; j <= k + FLANK && j < tracer->n_bins; j++) {
+        sum += power[j];
+        noise += snr[j] > 0 ? power[j] / snr[j] : 0;
+    }
+    return fmax(sum - noise, 0.1 * sum);
+}
+
+/* Bins from the path's last rise back to its start, the last first; returns how many. */
+static uint32_t follow_back(struct tracer *tracer, const struct path *path)
+{
+    uint32_t n = 0;
+    int k = (int)path->best_bin;
+    for (uint64_t frame = path->last_rise;; frame--) {
+        tracer->trail[n++] = (uint32_t)k;
+        int step = tracer->history_step[(size_t)tracer_row(tracer, frame) * tracer->n_bins + (uint32_t)k];
+        if (step == STEP_START || frame == 0 || n + tracer->gap + 2 >= tracer->n_history)
+            return n;
+        k -= step;
+    }
+}
+
+static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+{
+    double snr = 0, contrast = 0, occupancy = 0, mean_square = 0;
+    double st = 0, sl = 0, stt = 0, stl = 0;
+    for (uint32_t i = 0; i < n; i++) {
+        const float *power = row_of(tracer->history_power, tracer, last - i);
+        const float *ratio = row_of(tracer->history_snr, tracer, last - i);
+        uint32_t k = tracer->trail[i];
+        double t = -(double)i / tracer->frame_rate, level_db = 10 * log10(power[k] + 1e-30);
+        snr += ratio[k];
+        contrast += log((power[k] + 1e-30) / (power_beside(tracer, power, k) + 1e-30));
+        occupancy += tracer->occupancy[k];
+        mean_square += tone_power(tracer, power, ratio, k);
+        st += t;
+        sl += level_db;
+        stt += t * t;
+        stl += t * level_db;
+    }
+    double spread = n * stt - st * st;
+    out->snr = snr / n;
+    out->contrast = exp(contrast / n);
+    out->occupancy = occupancy / n;
+    out->mean_square = mean_square / n;
+    out->fall_db_s = spread > 0 ? -(n * stl - st * sl) / spread : 0;
+}
+
+static void measure_shape(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+{
+    double low = INFINITY, high = 0, ends[2] = {0, 0};
+    uint32_t share = n / 8 + 1;
+    for (uint32_t i = 0; i < n; i++) {
+        double hz = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        low = fmin(low, hz);
+        high = fmax(high, hz);
+        ends[0] += i >= n - share ? hz / share : 0;
+        ends[1] += i < share ? hz / share : 0;
+    }
+    for (uint32_t p = 0; p < TRACE_POINTS; p++) {
+        uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
+        out->hz[p] = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+    }
+    out->low_hz = low;
+    out->high_hz = high;
+    out->sweep_hz = ends[1] - ends[0];
+}
+
+/* What tells whether an open path goes on with a sound: where it runs and how strong it is. */
+static void measure_course(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+{
+    double power = 0;
+    for (uint32_t i = 0; i < n; i++)
+        power += row_of(tracer->history_power, tracer, last - i)[tracer->trail[i]];
+    out->mean_square = power / n;
+    out->low_hz = INFINITY;
+    for (uint32_t p = 0; p < TRACE_POINTS; p++) {
+        uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
+        out->hz[p] = (tracer->first_bin + tracer->trail[i]) * tracer->bin_hz;
+        out->low_hz = fmin(out->low_hz, out->hz[p]);
+        out->high_hz = fmax(out->high_hz, out->hz[p]);
+    }
+}
+
+void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
+{
+    uint32_t n = follow_back(tracer, path);
+    uint64_t last = path->last_rise;
+    *out = (struct contour){.n_cells = n, .score = path->best, .bin_hz = tracer->bin_hz};
+    out->start_frame = tracer->centre[tracer_row(tracer, last - (n - 1))] - tracer->hop / 2;
+    out->end_frame = tracer->centre[tracer_row(tracer, last)] + tracer->hop / 2;
+    if (whole) {
+        measure_cells(tracer, last, n, out);
+        measure_shape(tracer, last, n, out);
+    } else
+        measure_course(tracer, last, n, out);
+}

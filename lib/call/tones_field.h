@@ -1,0 +1,71 @@
+/* What the parts of the tracer share: tones_trace.c (frames), tones_paths.c (recursion), tones_contour.c
+ * (tracing back). Nobody else includes it. */
+#ifndef CALL_TONES_FIELD_H
+#define CALL_TONES_FIELD_H
+
+#include "call/tones_trace.h"
+#include "dsp/background.h"
+#include "dsp/spectrum.h"
+
+#define MAX_PATHS 48
+#define NO_PATH (-1)
+#define STEP_START INT8_MIN
+#define MAX_STEP 8 /* bins that a path may move in a frame */
+
+struct path {
+    bool open;
+    float best;         /* highest score, no more than the ceiling */
+    uint64_t first;     /* frame of its start */
+    uint64_t last_rise; /* last frame at which the score reached its highest */
+    uint32_t best_bin;  /* there */
+    float tip;          /* highest score in the newest frame, and its bin */
+    uint32_t tip_bin;
+};
+
+/* One frame's cells of the recursion; [n_bins + 2 * MAX_STEP] with an empty margin. */
+struct cells {
+    float *score, *slope;
+    int16_t *path;
+    uint64_t *first;
+};
+
+struct tracer {
+    struct tracer_setup setup;
+    double frame_rate;  /* frames a second */
+    double bin_hz, hop; /* of the spectrum; hop in input frames */
+    uint32_t n, n_bins, first_bin;
+    uint32_t max_step, gap; /* bins a frame; frames that are bridged */
+    uint32_t n_history;
+
+    struct spectrum *spectrum;
+    struct background *background;
+    uint64_t origin;    /* input frame of the first sample since the last gap */
+    uint64_t n_shifted; /* samples that have left `held` since then */
+    uint32_t n_held;
+    float *held, *limited, *power;
+
+    uint64_t frame;                                   /* number of the newest frame plus 1 */
+    float *level, *floor, *smooth, *occupancy, *gain; /* [n_bins] */
+    float *best, *step;                               /* [n_bins] of the recursion */
+    struct cells now, before;
+    struct path paths[MAX_PATHS];
+
+    double *centre;       /* [n_history]: input frame of each frame's middle */
+    int8_t *history_step; /* [n_history][n_bins] */
+    float *history_power, *history_snr;
+    uint32_t *trail; /* [n_history]: bins of the path being traced back, the last first */
+};
+
+static inline uint32_t tracer_row(const struct tracer *tracer, uint64_t frame)
+{
+    return (uint32_t)(frame % tracer->n_history);
+}
+
+/* tones_paths.c: one frame of the recursion over tracer->gain, then paths that begin and end. */
+void paths_advance(struct tracer *tracer, const struct trace_sink *sink);
+/* Ends all open paths. */
+void paths_end(struct tracer *tracer, const struct trace_sink *sink);
+/* tones_contour.c: traces an open path back to its start; without `whole` only times, course and level. */
+void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out);
+
+#endif

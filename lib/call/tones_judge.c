@@ -1,0 +1,374 @@
+/* From contours to calls; see tones_judge.h. */
+#include "call/tones_judge.h"
+#include <math.h>
+#include <string.h>
+
+#define MIN_CONTRAST 2.0   /* 3 dB over the cells beside it: less is a patch of noise */
+#define LINE_OCCUPANCY 0.5 /* of the last half minute: a tone that is nearly always there */
+#define FLAT_SHARE 0.05    /* of its frequency, or FLAT_BINS: what is flat */
+#define FLAT_BINS 3
+#define TAIL_REACH_S 5.0 /* a tail begins at most so long after its sound ended ... */
+#define TAIL_WEAKER 0.1  /* ... with at most this share of its mean square */
+#define TAIL_FALL_DB_S 1.5
+#define CONTAINED 0.8 /* share of the shorter that lies within the other: overlaps nearly fully */
+#define HARMONIC_OVERLAP 0.6
+#define HARMONIC_ERROR 0.02
+#define MAX_HARMONIC 10
+#define MEMORY_S 12.0       /* how long a given sound still absorbs its pieces */
+#define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
+#define LOOK_AGAIN_S 0.05   /* after a sound was held for an open contour */
+#define NEARLY_BEST 0.5     /* classes with so much of the most points are equals */
+
+static double duration(const struct contour *c)
+{
+    return c->end_frame - c->start_frame;
+}
+
+static double overlap(const struct contour *a, const struct contour *b)
+{
+    return fmin(a->end_frame, b->end_frame) - fmax(a->start_frame, b->start_frame);
+}
+
+static double hz_at(const struct contour *c, double frame)
+{
+    double x = (frame - c->start_frame) / duration(c) * (TRACE_POINTS - 1);
+    x = fmin(fmax(x, 0), TRACE_POINTS - 1.0);
+    uint32_t i = (uint32_t)fmin(x, TRACE_POINTS - 2.0);
+    return c->hz[i] + (x - i) * (c->hz[i + 1] - c->hz[i]);
+}
+
+/* Share of the common time in which the frequencies stand as i to j, within the tolerance. */
+static double share_in_ratio(const struct contour *a, const struct contour *b, double ratio, double error,
+                             double tolerance_hz)
+{
+    double start = fmax(a->start_frame, b->start_frame), length = overlap(a, b);
+    uint32_t good = 0;
+    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
+        double frame = start + length * (i + 0.5) / TRACE_POINTS;
+        double wanted = ratio * hz_at(b, frame);
+        good += fabs(hz_at(a, frame) - wanted) < error * wanted + tolerance_hz;
+    }
+    return good / (double)TRACE_POINTS;
+}
+
+/* A harmonic of the other: a whole multiple of its frequency for most of their common time. */
+static bool is_harmonic(const struct contour *a, const struct contour *b)
+{
+    const struct contour *high = a->hz[TRACE_POINTS / 2] > b->hz[TRACE_POINTS / 2] ? a : b;
+    const struct contour *low = high == a ? b : a;
+    double middle = fmax(a->start_frame, b->start_frame) + overlap(a, b) / 2;
+    double ratio = round(hz_at(high, middle) / hz_at(low, middle));
+    if (ratio < 2 || ratio > MAX_HARMONIC)
+        return false;
+    return share_in_ratio(high, low, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= 0.7;
+}
+
+/* Far weaker than the other, above it, and nearly all within its time: an overtone or its distortion, though
+ * no multiple can be told (at the tenth harmonic any frequency is near one). */
+static bool is_overtone(const struct contour *weak, const struct contour *strong)
+{
+    return overlap(weak, strong) >= CONTAINED * duration(weak) &&
+           weak->mean_square < OVERTONE_WEAKER * strong->mean_square && weak->low_hz > strong->high_hz;
+}
+
+static uint32_t first_class(const struct judge *judge, uint32_t tracer)
+{
+    uint32_t c = 0;
+    while (c + 1 < judge->n_classes && judge->classes[c].tracer != tracer)
+        c++;
+    return c;
+}
+
+bool judge_is_same_sound(const struct judge *judge, const struct contour *a, const struct contour *b)
+{
+    double common = overlap(a, b), shorter = fmin(duration(a), duration(b));
+    if (common <= 0)
+        return false;
+    if (common >= 0.3 * shorter && share_in_ratio(a, b, 1, 0, 2.5 * fmax(a->bin_hz, b->bin_hz)) >= 0.7)
+        return true;
+    if (common >= HARMONIC_OVERLAP * shorter && is_harmonic(a, b))
+        return true;
+    if (is_overtone(a, b) || is_overtone(b, a))
+        return true;
+    enum group group_a = judge->classes[first_class(judge, a->tracer)].class->group;
+    enum group group_b = judge->classes[first_class(judge, b->tracer)].class->group;
+    if (group_a == group_b)
+        return common >= CONTAINED * shorter;
+    return common >= CONTAINED * fmax(duration(a), duration(b));
+}
+
+static bool is_flat(const struct contour *c)
+{
+    return c->high_hz - c->low_hz <= fmax(FLAT_BINS * c->bin_hz, FLAT_SHARE * c->high_hz);
+}
+
+/* A flat contour that dies away where a much stronger sound has just been. */
+static bool is_tail(const struct judge *judge, const struct contour *c)
+{
+    if (!is_flat(c) || c->fall_db_s < TAIL_FALL_DB_S)
+        return false;
+    double middle = c->hz[TRACE_POINTS / 2];
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        const struct sound *sound = &judge->sounds[i];
+        if (sound->used && sound->start_frame < c->start_frame &&
+            c->start_frame < sound->end_frame + TAIL_REACH_S * judge->rate_hz &&
+            middle > 0.97 * sound->low_hz && middle < 1.03 * sound->high_hz &&
+            c->mean_square < TAIL_WEAKER * sound->strongest)
+            return true;
+    }
+    return false;
+}
+
+/* Why the contour is no call of any class, or REJECT_COUNT. */
+static enum rejection reject_contour(const struct judge *judge, enum trace_end end, const struct contour *c)
+{
+    if (end == TRACE_TOO_MANY)
+        return REJECT_TOO_MANY;
+    if (end == TRACE_STEADY_LINE || (is_flat(c) && c->occupancy > LINE_OCCUPANCY))
+        return REJECT_STEADY_LINE;
+    if (c->contrast < MIN_CONTRAST)
+        return REJECT_BROADBAND;
+    return is_tail(judge, c) ? REJECT_REVERBERATION : REJECT_COUNT;
+}
+
+/* Why the contour is no call of this class, or REJECT_COUNT when it is one. */
+static enum rejection reject_for_class(const struct judge *judge, const struct judged_class *judged,
+                                       const struct contour *c)
+{
+    const struct call_class *class = judged->class;
+    const struct tone_shape *tone = &class->tone;
+    double seconds = duration(c) / judge->rate_hz, extent = c->high_hz - c->low_hz;
+    uint32_t inside = 0;
+    for (uint32_t i = 0; i < TRACE_POINTS; i++)
+        inside += c->hz[i] >= class->low_hz && c->hz[i] <= class->high_hz;
+    if (c->score < judged->threshold || 10 * log10(c->snr) < tone->min_snr_db)
+        return REJECT_TOO_WEAK;
+    if (seconds < tone->min_s)
+        return REJECT_TOO_SHORT;
+    if (seconds > tone->max_s)
+        return REJECT_TOO_LONG;
+    bool good = inside >= 0.8 * TRACE_POINTS && extent >= tone->min_extent_hz &&
+                extent <= tone->max_extent_hz && c->sweep_hz >= tone->min_sweep_hz &&
+                c->sweep_hz <= tone->max_sweep_hz;
+    return good ? REJECT_COUNT : REJECT_SHAPE;
+}
+
+/* Its energy: the strongest contours say what a sound is. */
+static double weight_of(const struct contour *c)
+{
+    return duration(c) * c->mean_square;
+}
+
+static void add_member(struct sound *sound, const struct contour *c)
+{
+    double length = duration(c);
+    bool first = sound->n_members == 0;
+    sound->start_frame = first ? c->start_frame : fmin(sound->start_frame, c->start_frame);
+    sound->end_frame = first ? c->end_frame : fmax(sound->end_frame, c->end_frame);
+    sound->low_hz = first ? c->low_hz : fmin(sound->low_hz, c->low_hz);
+    sound->high_hz = first ? c->high_hz : fmax(sound->high_hz, c->high_hz);
+    sound->strongest = fmax(sound->strongest, c->mean_square);
+    sound->energy += length * c->mean_square;
+    sound->snr_weight += length * c->snr;
+    sound->weight += length;
+    if (sound->n_members < JUDGE_MAX_MEMBERS) {
+        sound->members[sound->n_members++] = *c;
+        return;
+    }
+    uint32_t least = 0;
+    for (uint32_t i = 1; i < JUDGE_MAX_MEMBERS; i++)
+        if (weight_of(&sound->members[i]) < weight_of(&sound->members[least]))
+            least = i;
+    if (weight_of(&sound->members[least]) < weight_of(c))
+        sound->members[least] = *c;
+}
+
+static bool belongs(const struct judge *judge, const struct sound *sound, const struct contour *c)
+{
+    for (uint32_t i = 0; i < sound->n_members; i++)
+        if (judge_is_same_sound(judge, &sound->members[i], c))
+            return true;
+    return false;
+}
+
+/* Two sounds turned out to be one. */
+static void join(struct sound *to, struct sound *from)
+{
+    for (uint32_t i = 0; i < from->n_members; i++)
+        add_member(to, &from->members[i]);
+    for (uint32_t c = 0; c < CATALOGUE_MAX_CLASSES; c++)
+        to->points[c] += from->points[c];
+    from->used = false;
+}
+
+/* What is given cannot be changed any more: only weaker contours within its time are absorbed. */
+static bool is_piece(const struct sound *given, const struct contour *c)
+{
+    double common = fmin(given->end_frame, c->end_frame) - fmax(given->start_frame, c->start_frame);
+    return common >= CONTAINED * duration(c) && c->mean_square < given->strongest;
+}
+
+/* The sound that the contour belongs to, a new one, or NULL when it belongs to one that is given already or
+ * there is no room; *why says which. */
+static struct sound *find_sound(struct judge *judge, const struct contour *c, enum rejection *why)
+{
+    struct sound *found = NULL, *unused = NULL;
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        struct sound *sound = &judge->sounds[i];
+        if (!sound->used)
+            unused = sound;
+        else if (belongs(judge, sound, c)) {
+            if (sound->given && !is_piece(sound, c))
+                continue;
+            if (sound->given) {
+                *why = REJECT_PART_OF_ANOTHER;
+                return NULL;
+            }
+            if (found)
+                join(found, sound);
+            else
+                found = sound;
+        }
+    }
+    *why = REJECT_TOO_MANY;
+    if (!found && unused)
+        *unused = (struct sound){.used = true};
+    return found ? found : unused;
+}
+
+void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const struct contour *contour)
+{
+    struct contour c = {0};
+    if (contour)
+        c = *contour;
+    c.tracer = tracer;
+    enum rejection all = reject_contour(judge, end, &c), each[CATALOGUE_MAX_CLASSES];
+    bool fits = false;
+    for (uint32_t i = 0; i < judge->n_classes; i++) {
+        if (judge->classes[i].tracer != tracer)
+            continue;
+        each[i] = all != REJECT_COUNT ? all : reject_for_class(judge, &judge->classes[i], &c);
+        fits = fits || each[i] == REJECT_COUNT;
+    }
+    enum rejection why = REJECT_COUNT;
+    struct sound *sound = fits ? find_sound(judge, &c, &why) : NULL;
+    if (sound)
+        add_member(sound, &c);
+    for (uint32_t i = 0; i < judge->n_classes; i++) {
+        if (judge->classes[i].tracer != tracer)
+            continue;
+        if (sound && each[i] == REJECT_COUNT)
+            sound->points[i] += weight_of(&c);
+        else if (!fits || (!sound && each[i] == REJECT_COUNT))
+            judge->rejections[i][fits ? why : each[i]]++;
+    }
+}
+
+/* Of the classes with nearly the most points the one that lets least through. */
+static uint32_t best_class(const struct judge *judge, const struct sound *sound)
+{
+    double most = 0;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        most = fmax(most, sound->points[i]);
+    uint32_t best = 0;
+    double least = INFINITY;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        if (sound->points[i] > 0 && sound->points[i] >= NEARLY_BEST * most &&
+            judge->classes[i].allowance < least) {
+            least = judge->classes[i].allowance;
+            best = i;
+        }
+    return best;
+}
+
+static bool is_due(const struct judge *judge, const struct sound *sound, double frame)
+{
+    return sound->used && !sound->given &&
+           frame >= sound->end_frame +
+                        judge->classes[best_class(judge, sound)].class->natural_delay_s * judge->rate_hz;
+}
+
+bool judge_is_due(const struct judge *judge, double frame)
+{
+    if (frame < judge->look_again)
+        return false;
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++)
+        if (is_due(judge, &judge->sounds[i], frame))
+            return true;
+    return false;
+}
+
+static void give(const struct judge *judge, struct sound *sound, uint64_t known_frame,
+                 const struct found_sink *sink)
+{
+    struct found_call found = {.class_index = best_class(judge, sound),
+                               .start_frame = sound->start_frame,
+                               .end_frame = sound->end_frame,
+                               .known_frame = known_frame,
+                               .low_hz = sound->low_hz,
+                               .high_hz = sound->high_hz,
+                               .snr_db = 10 * log10(sound->snr_weight / sound->weight),
+                               .mean_square_pa2 = sound->energy / (sound->end_frame - sound->start_frame)};
+    sound->given = true;
+    sink->take(sink->context, &found);
+}
+
+enum openness { CLOSED, GOES_ON, OVERTONE_OF_OPEN };
+
+static enum openness look_at_open(const struct judge *judge, const struct sound *sound,
+                                  const struct contour *open, uint32_t n_open)
+{
+    enum openness openness = CLOSED;
+    for (uint32_t i = 0; i < n_open; i++) {
+        bool overtone = true;
+        for (uint32_t m = 0; m < sound->n_members; m++)
+            overtone = overtone && is_overtone(&sound->members[m], &open[i]);
+        if (overtone)
+            return OVERTONE_OF_OPEN;
+        if (belongs(judge, sound, &open[i]))
+            openness = GOES_ON;
+    }
+    return openness;
+}
+
+/* Which sounds are to be given now; holds those that go on and drops overtones of what is still open. */
+static void choose(struct judge *judge, uint64_t known_frame, bool all, const struct contour *open,
+                   uint32_t n_open, bool ready[JUDGE_MAX_SOUNDS])
+{
+    judge->look_again = 0;
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        struct sound *sound = &judge->sounds[i];
+        ready[i] = all ? sound->used && !sound->given : is_due(judge, sound, (double)known_frame + 1);
+        if (!ready[i] || all)
+            continue;
+        enum openness openness = look_at_open(judge, sound, open, n_open);
+        ready[i] = openness == CLOSED;
+        if (openness == GOES_ON)
+            judge->look_again = (double)known_frame + LOOK_AGAIN_S * judge->rate_hz;
+        if (openness == OVERTONE_OF_OPEN) {
+            judge->rejections[best_class(judge, sound)][REJECT_PART_OF_ANOTHER]++;
+            sound->used = false;
+        }
+    }
+}
+
+void judge_give(struct judge *judge, uint64_t known_frame, bool all, const struct contour *open,
+                uint32_t n_open, const struct found_sink *sink)
+{
+    bool ready[JUDGE_MAX_SOUNDS];
+    choose(judge, known_frame, all, open, n_open, ready);
+    for (;;) {
+        struct sound *next = NULL;
+        for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++)
+            if (ready[i] && !judge->sounds[i].given &&
+                (!next || judge->sounds[i].start_frame < next->start_frame))
+                next = &judge->sounds[i];
+        if (!next)
+            break;
+        give(judge, next, known_frame, sink);
+    }
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++)
+        if (judge->sounds[i].given &&
+            (double)known_frame > judge->sounds[i].end_frame + MEMORY_S * judge->rate_hz)
+            judge->sounds[i].used = false;
+}

@@ -1,0 +1,191 @@
+/* The recursion of the tracer and its paths; see tones_trace.h. */
+#include "call/tones_field.h"
+#include <math.h>
+#include <string.h>
+
+/* What a step costs: the negative log-probability of ending so many bins from where the slope points. Over
+ * all whole steps exp(-cost) sums to less than 1, as Ville's inequality wants. */
+#define STEP_COST 0.6F
+#define STEP_COST_BIN 1.2F
+#define STEP_COST_MOST 3.6F
+#define GAP_COST 12.0F   /* fall of the score that ends a path: a gap of about 8 frames */
+#define SLOPE_GAIN 0.35F /* how fast the slope follows */
+
+/* For every cell the best path that leads to it; 0 where it is better to begin there. */
+static void find_best(struct tracer *tracer)
+{
+    const uint32_t n = tracer->n_bins;
+    float *restrict best = tracer->best, *restrict chosen = tracer->step;
+    for (uint32_t k = 0; k < n; k++) {
+        best[k] = 0;
+        chosen[k] = STEP_START;
+    }
+    for (int d = -(int)tracer->max_step; d <= (int)tracer->max_step; d++) {
+        const float *restrict score = tracer->before.score + MAX_STEP - d;
+        const float *restrict slope = tracer->before.slope + MAX_STEP - d;
+        const float step = (float)d;
+        for (uint32_t k = 0; k < n; k++) {
+            float off = step - slope[k];
+            off = off < 0 ? -off : off;
+            float cost = STEP_COST_BIN * off;
+            cost = cost < STEP_COST_MOST - STEP_COST ? cost : STEP_COST_MOST - STEP_COST;
+            float candidate = score[k] - (cost + STEP_COST);
+            chosen[k] = candidate > best[k] ? step : chosen[k];
+            best[k] = candidate > best[k] ? candidate : best[k];
+        }
+    }
+}
+
+static void step_cells(struct tracer *tracer)
+{
+    const float ceiling = (float)tracer->setup.ceiling;
+    struct cells *now = &tracer->now, *before = &tracer->before;
+    int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
+    for (uint32_t k = 0; k < tracer->n_bins; k++) {
+        const uint32_t at = k + MAX_STEP;
+        float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + tracer->gain[k];
+        int step = (int)tracer->step[k];
+        steps[k] = (int8_t)step;
+        if (score <= 0) {
+            now->score[at] = now->slope[at] = 0;
+            now->path[at] = NO_PATH;
+            continue;
+        }
+        now->score[at] = score;
+        if (step == STEP_START) {
+            now->slope[at] = 0;
+            now->path[at] = NO_PATH;
+            now->first[at] = tracer->frame;
+        } else {
+            const uint32_t from = (uint32_t)((int)at - step);
+            now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
+            now->path[at] = before->path[from];
+            now->first[at] = before->first[from];
+        }
+    }
+}
+
+static void find_tips(struct tracer *tracer)
+{
+    for (uint32_t i = 0; i < MAX_PATHS; i++)
+        tracer->paths[i].tip = 0;
+    for (uint32_t k = 0; k < tracer->n_bins; k++) {
+        int16_t at = tracer->now.path[k + MAX_STEP];
+        if (at == NO_PATH)
+            continue;
+        struct path *path = &tracer->paths[at];
+        if (tracer->now.score[k + MAX_STEP] > path->tip) {
+            path->tip = tracer->now.score[k + MAX_STEP];
+            path->tip_bin = k;
+        }
+    }
+}
+
+/* Nothing may go on from the cells of a path that has ended. */
+static void clear_path(struct tracer *tracer, uint32_t i)
+{
+    for (uint32_t at = MAX_STEP; at < tracer->n_bins + MAX_STEP; at++)
+        if (tracer->now.path[at] == (int)i) {
+            tracer->now.path[at] = NO_PATH;
+            tracer->now.score[at] = tracer->now.slope[at] = 0;
+        }
+    tracer->paths[i].open = false;
+}
+
+/* A line is learned at once: its cells' mean power becomes the background there. */
+static void learn_line(struct tracer *tracer, const struct contour *contour)
+{
+    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
+        int bin = (int)lround(contour->hz[i] / tracer->bin_hz) - (int)tracer->first_bin;
+        for (int k = bin - 2; k <= bin + 2; k++)
+            if (k >= 0 && k < (int)tracer->n_bins)
+                background_raise(tracer->background, (uint32_t)k, tracer->smooth[k]);
+    }
+}
+
+static void end_path(struct tracer *tracer, uint32_t i, enum trace_end end, const struct trace_sink *sink)
+{
+    struct contour contour;
+    contour_trace(tracer, &tracer->paths[i], true, &contour);
+    if (end == TRACE_STEADY_LINE)
+        learn_line(tracer, &contour);
+    clear_path(tracer, i);
+    sink->take(sink->context, end, &contour);
+}
+
+static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
+{
+    const float ceiling = (float)tracer->setup.ceiling;
+    const double max_frames = tracer->setup.max_s * tracer->frame_rate;
+    for (uint32_t i = 0; i < MAX_PATHS; i++) {
+        struct path *path = &tracer->paths[i];
+        if (!path->open)
+            continue;
+        float tip = path->tip < ceiling ? path->tip : ceiling;
+        if (tip >= path->best) {
+            path->best = tip;
+            path->last_rise = tracer->frame;
+            path->best_bin = path->tip_bin;
+        }
+        if ((double)(path->last_rise - path->first) > max_frames)
+            end_path(tracer, i, TRACE_STEADY_LINE, sink);
+        else if (tip <= path->best - GAP_COST || tracer->frame - path->last_rise >= tracer->gap)
+            end_path(tracer, i, TRACE_CONTOUR, sink);
+    }
+}
+
+/* A cell whose score has reached the threshold and is the highest around begins a path, unless one is there
+ * already: then it is the flank of that one. */
+static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink *sink)
+{
+    struct cells *now = &tracer->now;
+    const uint32_t at = k + MAX_STEP;
+    for (uint32_t near = at - 3; near <= at + 3; near++)
+        if (now->path[near] != NO_PATH && now->score[near] > 0) {
+            now->path[at] = now->path[near];
+            return;
+        }
+    for (uint32_t i = 0; i < MAX_PATHS; i++) {
+        struct path *path = &tracer->paths[i];
+        if (path->open)
+            continue;
+        float ceiling = (float)tracer->setup.ceiling;
+        float best = now->score[at] < ceiling ? now->score[at] : ceiling;
+        *path = (struct path){true, best, now->first[at], tracer->frame, k, now->score[at], k};
+        now->path[at] = (int16_t)i;
+        return;
+    }
+    now->score[at] = 0;
+    sink->take(sink->context, TRACE_TOO_MANY, NULL);
+}
+
+static void open_paths(struct tracer *tracer, const struct trace_sink *sink)
+{
+    const float *score = tracer->now.score;
+    for (uint32_t k = 0; k < tracer->n_bins; k++) {
+        const uint32_t at = k + MAX_STEP;
+        if (tracer->now.path[at] == NO_PATH && score[at] >= (float)tracer->setup.threshold &&
+            score[at] >= score[at - 1] && score[at] > score[at + 1])
+            open_path(tracer, k, sink);
+    }
+}
+
+void paths_advance(struct tracer *tracer, const struct trace_sink *sink)
+{
+    find_best(tracer);
+    step_cells(tracer);
+    find_tips(tracer);
+    follow_paths(tracer, sink);
+    open_paths(tracer, sink);
+    struct cells swap = tracer->before;
+    tracer->before = tracer->now;
+    tracer->now = swap;
+}
+
+void paths_end(struct tracer *tracer, const struct trace_sink *sink)
+{
+    for (uint32_t i = 0; i < MAX_PATHS; i++)
+        if (tracer->paths[i].open)
+            end_path(tracer, i, TRACE_CONTOUR, sink);
+    memset(tracer->before.score, 0, (tracer->n_bins + 2 * MAX_STEP) * sizeof *tracer->before.score);
+}

@@ -1,0 +1,222 @@
+/* The tracer of one spectrum window: from samples to the cells of the recursion; see tones_trace.h. */
+#include "call/tones_field.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define DESIGN_SNR 5.0F  /* of a cell, for which the likelihood ratio is made: near the weakest of use */
+#define MAX_GAIN 5.0F    /* of one cell: a single loud frame says little about a tone */
+#define TAIL_BELOW_DB 12 /* reverberation: what is so far below a bin's recent level ... */
+#define TAIL_FALL_DB_S 6 /* ... falling by so much a second, is a tail (measured on a recording in a bay) */
+#define OCCUPANCY_S 30
+#define OCCUPANCY_SNR 4.0F
+#define TRANSIENT_LIMIT 5.0F /* times the frame's level; with the power of 6 as Gillespie et al. 2013 */
+
+/* The even number with no prime above 5 that is nearest to x. */
+static uint32_t fast_length(double x)
+{
+    uint32_t best = 0;
+    for (uint32_t n = 16; n <= 1u << 20 && (best == 0 || n < 2 * x); n += 2) {
+        uint32_t rest = n;
+        for (uint32_t prime = 2; prime <= 5; prime++)
+            while (rest % prime == 0)
+                rest /= prime;
+        if (rest == 1 && (best == 0 || fabs(n - x) < fabs(best - x)))
+            best = n;
+    }
+    return best;
+}
+
+static void choose_bins(struct tracer *tracer)
+{
+    const struct tracer_setup *setup = &tracer->setup;
+    double rate = setup->rate_hz / setup->factor;
+    tracer->n = fast_length(setup->window_s * rate);
+    tracer->bin_hz = rate / tracer->n;
+    tracer->hop = tracer->n / 2.0 * setup->factor;
+    tracer->frame_rate = setup->rate_hz / tracer->hop;
+    uint32_t last = (uint32_t)fmin(floor(setup->high_hz / tracer->bin_hz), tracer->n / 2 - 1);
+    tracer->first_bin = (uint32_t)fmax(1, ceil(setup->low_hz / tracer->bin_hz));
+    tracer->n_bins = last >= tracer->first_bin ? last - tracer->first_bin + 1 : 0;
+    double step = ceil(setup->max_rate_hz_s / tracer->frame_rate / tracer->bin_hz);
+    tracer->max_step = (uint32_t)fmin(fmax(step, 1), MAX_STEP);
+    tracer->n_history = (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + 4;
+}
+
+double tracer_cells_per_s(const struct tracer_setup *setup)
+{
+    struct tracer tracer = {.setup = *setup};
+    choose_bins(&tracer);
+    return tracer.n_bins * tracer.frame_rate;
+}
+
+static bool make_cells(struct cells *cells, size_t n)
+{
+    cells->score = calloc(n, sizeof *cells->score);
+    cells->slope = calloc(n, sizeof *cells->slope);
+    cells->path = calloc(n, sizeof *cells->path);
+    cells->first = calloc(n, sizeof *cells->first);
+    return cells->score && cells->slope && cells->path && cells->first;
+}
+
+static void free_cells(struct cells *cells)
+{
+    free(cells->score);
+    free(cells->slope);
+    free(cells->path);
+    free(cells->first);
+}
+
+static bool make_arrays(struct tracer *tracer)
+{
+    size_t k = tracer->n_bins, history = tracer->n_history;
+    float **const of_bins[] = {&tracer->level, &tracer->floor, &tracer->smooth, &tracer->occupancy,
+                               &tracer->gain,  &tracer->best,  &tracer->step};
+    bool good = true;
+    for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
+        good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
+    good = make_cells(&tracer->now, k + 2 * MAX_STEP) && good;
+    good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
+    good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
+    good = (tracer->limited = calloc(tracer->n, sizeof(float))) && good;
+    good = (tracer->power = calloc(tracer->n / 2 + 1, sizeof(float))) && good;
+    good = (tracer->centre = calloc(history, sizeof *tracer->centre)) && good;
+    good = (tracer->history_step = calloc(history * k, 1)) && good;
+    good = (tracer->history_power = calloc(history * k, sizeof(float))) && good;
+    good = (tracer->history_snr = calloc(history * k, sizeof(float))) && good;
+    return (tracer->trail = calloc(history, sizeof *tracer->trail)) && good;
+}
+
+enum status tracer_create(const struct tracer_setup *setup, struct tracer **out)
+{
+    struct tracer *tracer = calloc(1, sizeof *tracer);
+    if (!tracer)
+        return STATUS_NO_MEMORY;
+    tracer->setup = *setup;
+    choose_bins(tracer);
+    enum status status = tracer->n_bins >= 3 ? STATUS_OK : STATUS_BAD_ARGUMENT;
+    if (status == STATUS_OK)
+        status = spectrum_create(tracer->n, WINDOW_HANN, &tracer->spectrum);
+    if (status == STATUS_OK)
+        status = background_create(tracer->n_bins, tracer->frame_rate, &tracer->background);
+    if (status == STATUS_OK && !make_arrays(tracer))
+        status = STATUS_NO_MEMORY;
+    /* A contour ends half a hop after its last frame's middle; that frame is complete half a window after its
+     * middle and reaches the tracer by the decimator's delay later. */
+    if (status == STATUS_OK) {
+        double late = tracer->hop / 2 + setup->late_frames;
+        double gap = floor((setup->delay_s * setup->rate_hz - late) / tracer->hop);
+        tracer->gap = gap >= 1 ? (uint32_t)gap : 0;
+        status = tracer->gap ? STATUS_OK : STATUS_BAD_ARGUMENT;
+    }
+    if (status != STATUS_OK) {
+        tracer_destroy(tracer);
+        return status;
+    }
+    *out = tracer;
+    return STATUS_OK;
+}
+
+void tracer_destroy(struct tracer *tracer)
+{
+    if (!tracer)
+        return;
+    spectrum_destroy(tracer->spectrum);
+    background_destroy(tracer->background);
+    void *const arrays[] = {
+        tracer->level,  tracer->floor, tracer->smooth,       tracer->occupancy,     tracer->gain,
+        tracer->best,   tracer->step,  tracer->held,         tracer->limited,       tracer->power,
+        tracer->centre, tracer->trail, tracer->history_step, tracer->history_power, tracer->history_snr};
+    for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
+        free(arrays[i]);
+    free_cells(&tracer->now);
+    free_cells(&tracer->before);
+    free(tracer);
+}
+
+/* Softly limits what stands far above the frame's own level: clicks and the front of a blow, not a tone,
+ * whose crest is 1.25 times the level that is taken here (mean size of the samples, as of Gaussian noise). */
+static void limit_transients(const float *in, float *out, uint32_t n)
+{
+    double sum = 0;
+    for (uint32_t i = 0; i < n; i++)
+        sum += fabsf(in[i]);
+    float scale = (float)(1 / (TRANSIENT_LIMIT * 1.2533 * sum / n + 1e-30));
+    for (uint32_t i = 0; i < n; i++) {
+        float ratio = in[i] * scale, square = ratio * ratio;
+        out[i] = in[i] / (1 + square * square * square);
+    }
+}
+
+/* From power to log-likelihood ratios, over the background or the tail of what was just heard there. */
+static void weigh_cells(struct tracer *tracer)
+{
+    const float *power = tracer->power + tracer->first_bin;
+    const float fall = (float)pow(10, -TAIL_FALL_DB_S / 10.0 / tracer->frame_rate);
+    const float below = (float)pow(10, -TAIL_BELOW_DB / 10.0);
+    const float remember = (float)(1 / (OCCUPANCY_S * tracer->frame_rate));
+    const float slope = DESIGN_SNR / (1 + DESIGN_SNR), offset = logf(1 + DESIGN_SNR);
+    float *snr = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
+    for (uint32_t k = 0; k < tracer->n_bins; k++) {
+        float level = tracer->level[k] > tracer->floor[k] ? tracer->level[k] : tracer->floor[k];
+        float gain = slope * power[k] / level - offset;
+        tracer->gain[k] = gain < MAX_GAIN ? gain : MAX_GAIN;
+        snr[k] = power[k] / tracer->level[k];
+        tracer->occupancy[k] += ((snr[k] > OCCUPANCY_SNR ? 1 : 0) - tracer->occupancy[k]) * remember;
+        tracer->smooth[k] += (power[k] - tracer->smooth[k]) * 0.33F;
+        float tail = tracer->smooth[k] * below, old = tracer->floor[k] * fall;
+        tracer->floor[k] = tail > old ? tail : old;
+    }
+}
+
+static void take_frame(struct tracer *tracer, const struct trace_sink *sink)
+{
+    limit_transients(tracer->held, tracer->limited, tracer->n);
+    spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
+    uint32_t row = tracer_row(tracer, tracer->frame);
+    const float *power = tracer->power + tracer->first_bin;
+    memcpy(tracer->history_power + (size_t)row * tracer->n_bins, power, tracer->n_bins * sizeof *power);
+    double samples = (double)tracer->n_shifted + (tracer->n - 1) / 2.0;
+    tracer->centre[row] = (double)tracer->origin + samples * tracer->setup.factor - tracer->setup.late_frames;
+    bool ready = background_is_ready(tracer->background);
+    background_push(tracer->background, power, tracer->level);
+    weigh_cells(tracer);
+    for (uint32_t k = 0; k < tracer->n_bins && !ready; k++)
+        tracer->gain[k] = -1;
+    paths_advance(tracer, sink);
+    tracer->frame++;
+}
+
+void tracer_push(struct tracer *tracer, const float *samples, uint32_t n, const struct trace_sink *sink)
+{
+    while (n > 0) {
+        uint32_t room = tracer->n - tracer->n_held, take = n < room ? n : room;
+        memcpy(tracer->held + tracer->n_held, samples, take * sizeof *samples);
+        tracer->n_held += take;
+        samples += take;
+        n -= take;
+        if (tracer->n_held < tracer->n)
+            continue;
+        take_frame(tracer, sink);
+        tracer->n_held = tracer->n / 2;
+        memmove(tracer->held, tracer->held + tracer->n / 2, tracer->n_held * sizeof *tracer->held);
+        tracer->n_shifted += tracer->n / 2;
+    }
+}
+
+void tracer_end(struct tracer *tracer, uint64_t next_frame, const struct trace_sink *sink)
+{
+    paths_end(tracer, sink);
+    tracer->origin = next_frame;
+    tracer->n_shifted = 0;
+    tracer->n_held = 0;
+}
+
+uint32_t tracer_get_open(struct tracer *tracer, struct contour *out, uint32_t max_count)
+{
+    uint32_t n = 0;
+    for (uint32_t i = 0; i < MAX_PATHS && n < max_count; i++)
+        if (tracer->paths[i].open)
+            contour_trace(tracer, &tracer->paths[i], false, &out[n++]);
+    return n;
+}
