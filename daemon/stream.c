@@ -230,16 +230,16 @@ static void *run_stream(void *context)
     return NULL;
 }
 
-static enum status build(struct stream *stream, int64_t start_ns)
+static enum status build(struct stream *stream, uint32_t run, int64_t start_ns)
 {
-    struct listen_setup setup = {
-        .stream = stream->setup.number,
-        .run = stream->setup.run,
-        .n_channels = stream->facts.n_channels,
-        .rate_hz = stream->facts.rate_hz,
-        .map = {.anchor_frame = 0, .anchor_ns = start_ns, .rate_hz = stream->facts.rate_hz},
-        .catalogue = stream->setup.catalogue,
-        .columns = {take_column, stream}};
+    struct listen_setup setup = {.stream = stream->setup.number,
+                                 .run = run,
+                                 .n_channels = stream->facts.n_channels,
+                                 .rate_hz = stream->facts.rate_hz,
+                                 .map = {.anchor_ns = start_ns, .rate_hz = stream->facts.rate_hz},
+                                 .catalogue = stream->setup.catalogue};
+    if (stream->setup.columns.take)
+        setup.columns = (struct column_sink){take_column, stream};
     for (uint32_t i = 0; i < setup.n_channels; i++)
         setup.calibration[i] = stream->setup.settings->channels[i].calibration;
     stream->map = setup.map;
@@ -253,15 +253,18 @@ static enum status build(struct stream *stream, int64_t start_ns)
     return status;
 }
 
-enum status stream_start(struct stream *stream, struct merge *merge, int64_t start_ns, double skip_s)
+enum status stream_prepare(struct stream *stream, uint32_t run, int64_t start_ns, double skip_s)
 {
-    enum status status = build(stream, start_ns);
-    if (status != STATUS_OK)
-        return status;
-    if (skip_s > 0 && stream->kind->skip && stream->kind->skip(stream->input, skip_s) != STATUS_OK)
-        return STATUS_END;
-    stream->merge = merge;
+    enum status status = build(stream, run, start_ns);
     stream->start_ns = start_ns;
+    if (status == STATUS_OK && skip_s > 0 && stream->kind->skip)
+        status = stream->kind->skip(stream->input, skip_s);
+    return status == STATUS_END ? STATUS_OK : status;
+}
+
+enum status stream_start(struct stream *stream, struct merge *merge)
+{
+    stream->merge = merge;
     stream->start_monotonic_ns = clock_monotonic_ns();
     if (pthread_create(&stream->thread, NULL, run_stream, stream) != 0)
         return STATUS_SYSTEM;

@@ -21,7 +21,6 @@ struct stream_columns {
 
 struct stream_setup {
     uint32_t number;                        /* from 1 */
-    uint32_t run;                           /* from 1 */
     const struct stream_settings *settings; /* borrowed */
     const struct catalogue *catalogue;      /* borrowed */
     struct stream_columns columns;          /* take may be NULL */
@@ -32,10 +31,13 @@ struct stream_setup {
 enum status stream_open(const struct stream_setup *setup, struct problems *problems, struct stream **out);
 const struct input_facts *stream_get_facts(const struct stream *stream);
 
-/* Puts together what hears it, whose first frame is at watch time start_ns (a live stream: whatever comes
- * first is at the present watch time), then starts the thread. skip_s: where a recording or scene goes on
- * after a restart. */
-enum status stream_start(struct stream *stream, struct merge *merge, int64_t start_ns, double skip_s);
+/* Puts together what hears it (plans FFTs: before any stream starts), with the run's number and the watch
+ * time of the first frame (of a live stream: the present, for its first frame comes when it comes). skip_s:
+ * where a recording or a scene goes on after a restart; one that has nothing left there ends at once. */
+enum status stream_prepare(struct stream *stream, uint32_t run, int64_t start_ns, double skip_s);
+
+/* Starts the thread. */
+enum status stream_start(struct stream *stream, struct merge *merge);
 
 /* The next note of the input's own timetable, with known_ns set; STATUS_END when there is none. Before start
  * only. */

@@ -1,0 +1,161 @@
+/* Rebuilds a watch from its ledger; see restore.h. */
+#include "restore.h"
+#include "base/time.h"
+#include "record/entry.h"
+#include "recorder.h"
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+struct rebuilding {
+    struct watch *watch;
+    struct restored *restored;
+    char *problem;
+    bool has_zero;
+    int64_t now_ns;     /* how far the rebuilt watch has come */
+    enum status status; /* of what the sinks did */
+    struct text body;
+};
+
+static bool is_conclusion(const char *kind)
+{
+    return strcmp(kind, "contact") == 0 || strcmp(kind, "phase") == 0 || strcmp(kind, "advice") == 0 ||
+           strcmp(kind, "finding") == 0;
+}
+
+static void forget(struct restored_entry *entry)
+{
+    free(entry->utc);
+    free(entry->kind);
+    free(entry->body);
+}
+
+/* A conclusion of the rebuilt watch waits here until the ledger is seen to hold it. */
+static void take_outcome(void *context, const struct outcome *outcome)
+{
+    struct rebuilding *rebuilding = context;
+    struct restored *restored = rebuilding->restored;
+    char utc[TIME_UTC_SIZE];
+    if (outcome->kind == OUTCOME_EVENT || rebuilding->status != STATUS_OK)
+        return;
+    if (restored->n_missing == restored->capacity) {
+        size_t capacity = restored->capacity ? 2 * restored->capacity : 64;
+        struct restored_entry *larger = realloc(restored->missing, capacity * sizeof *larger);
+        if (!larger) {
+            rebuilding->status = STATUS_NO_MEMORY;
+            return;
+        }
+        restored->missing = larger;
+        restored->capacity = capacity;
+    }
+    rebuilding->status = entry_body(outcome, restored->zero_unix_ns, &rebuilding->body);
+    time_format_utc(restored->zero_unix_ns + outcome->watch_ns, utc);
+    struct restored_entry *entry = &restored->missing[restored->n_missing];
+    *entry = (struct restored_entry){strdup(utc), strdup(flow_outcome_kind_text(outcome)),
+                                     strdup(rebuilding->body.data ? rebuilding->body.data : "")};
+    if (!entry->utc || !entry->kind || !entry->body) {
+        forget(entry);
+        rebuilding->status = STATUS_NO_MEMORY;
+        return;
+    }
+    restored->n_missing++;
+    restored->n_conclusions++;
+}
+
+/* The ledger holds this conclusion: it is not missing. */
+static void meet_conclusion(struct rebuilding *rebuilding, const struct entry *entry)
+{
+    struct restored *restored = rebuilding->restored;
+    char id[FLOW_ID_SIZE], other[FLOW_ID_SIZE];
+    if (recorder_id_of(entry->body, id) != STATUS_OK)
+        return;
+    for (size_t i = 0; i < restored->n_missing; i++)
+        if (recorder_id_of(restored->missing[i].body, other) == STATUS_OK && strcmp(id, other) == 0) {
+            forget(&restored->missing[i]);
+            restored->n_missing--;
+            memmove(&restored->missing[i], &restored->missing[i + 1],
+                    (restored->n_missing - i) * sizeof restored->missing[0]);
+            return;
+        }
+}
+
+/* A conclusion that time alone brought comes out when time has passed to it. */
+static enum status pass_time(struct rebuilding *rebuilding, int64_t watch_ns)
+{
+    const struct outcome_sink sink = {take_outcome, rebuilding};
+    if (watch_ns <= rebuilding->now_ns)
+        return STATUS_OK;
+    rebuilding->now_ns = watch_ns;
+    enum status status = watch_advance(rebuilding->watch, watch_ns, &sink);
+    return status == STATUS_OK ? rebuilding->status : status;
+}
+
+static enum status push_input(struct rebuilding *rebuilding, const struct entry *entry, int64_t watch_ns)
+{
+    const struct outcome_sink sink = {take_outcome, rebuilding};
+    struct event event;
+    enum status status = entry_event(entry->kind, entry->body, watch_ns, &event);
+    if (status == STATUS_NOT_FOUND)
+        return STATUS_OK;
+    if (status == STATUS_OK) {
+        status = watch_push(rebuilding->watch, &event, &sink);
+        rebuilding->now_ns = watch_ns;
+    }
+    if (status != STATUS_OK)
+        snprintf(rebuilding->problem, LEDGER_PROBLEM_SIZE, "entry %lld (%s) cannot be taken again: %s",
+                 (long long)entry->seq, entry->kind, status_text(status));
+    rebuilding->restored->n_inputs++;
+    return status == STATUS_OK ? rebuilding->status : status;
+}
+
+static enum status take_entry(void *context, const struct entry *entry)
+{
+    struct rebuilding *rebuilding = context;
+    struct restored *restored = rebuilding->restored;
+    int64_t unix_ns;
+    if (time_parse_utc(entry->utc, &unix_ns) != STATUS_OK) {
+        snprintf(rebuilding->problem, LEDGER_PROBLEM_SIZE, "entry %lld has no time", (long long)entry->seq);
+        return STATUS_BAD_FORMAT;
+    }
+    if (!rebuilding->has_zero) {
+        rebuilding->has_zero = true;
+        restored->zero_unix_ns = unix_ns;
+    }
+    int64_t watch_ns = unix_ns - restored->zero_unix_ns;
+    if (watch_ns > restored->last_ns)
+        restored->last_ns = watch_ns;
+    if (strcmp(entry->kind, "run") == 0)
+        restored->last_run++;
+    if (!is_conclusion(entry->kind))
+        return push_input(rebuilding, entry, watch_ns);
+    enum status status = pass_time(rebuilding, watch_ns);
+    meet_conclusion(rebuilding, entry);
+    return status;
+}
+
+enum status restore_watch(struct ledger *ledger, struct watch *watch, struct restored *out,
+                          char problem[LEDGER_PROBLEM_SIZE])
+{
+    *out = (struct restored){0};
+    *problem = '\0';
+    struct rebuilding rebuilding = {.watch = watch, .restored = out, .problem = problem};
+    enum status status = ledger_read(ledger, &(struct ledger_query){0}, take_entry, &rebuilding);
+    text_destroy(&rebuilding.body);
+    if (status != STATUS_OK) {
+        if (*problem == '\0')
+            snprintf(problem, LEDGER_PROBLEM_SIZE, "the watch cannot be rebuilt: %s", status_text(status));
+        restored_destroy(out);
+    }
+    return status;
+}
+
+void restored_destroy(struct restored *restored)
+{
+    if (!restored)
+        return;
+    for (size_t i = 0; i < restored->n_missing; i++)
+        forget(&restored->missing[i]);
+    free(restored->missing);
+    restored->missing = NULL;
+    restored->n_missing = restored->capacity = 0;
+}

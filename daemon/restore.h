@@ -1,0 +1,30 @@
+/* Rebuilds a watch from its ledger: every recorded input is pushed again, in order, as at sea. */
+#ifndef RESTORE_H
+#define RESTORE_H
+
+#include "base/status.h"
+#include "ledger/ledger.h"
+#include "rule/watch.h"
+#include <stdint.h>
+
+/* An entry that the watch concludes and the ledger does not hold: it was lost between two commits. */
+struct restored_entry {
+    char *utc, *kind, *body; /* owned by struct restored */
+};
+
+struct restored {
+    uint32_t last_run;    /* 0: the ledger is empty */
+    int64_t zero_unix_ns; /* UTC of watch time zero: the first run's */
+    int64_t last_ns;      /* watch time of the last entry */
+    uint64_t n_inputs, n_conclusions;
+    size_t n_missing, capacity;
+    struct restored_entry *missing; /* in order */
+};
+
+/* Pushes the inputs of the ledger into the watch. Conclusions that the ledger lacks are returned, so that
+ * they can be written first. STATUS_BAD_FORMAT with a problem that names the entry. */
+enum status restore_watch(struct ledger *ledger, struct watch *watch, struct restored *out,
+                          char problem[LEDGER_PROBLEM_SIZE]);
+void restored_destroy(struct restored *restored);
+
+#endif

@@ -1,0 +1,139 @@
+/* One channel's ear; see ear.h. */
+#include "listen/ear.h"
+#include <math.h>
+#include <stdlib.h>
+
+static enum status create_parts(const struct ear_setup *setup, struct ear *ear)
+{
+    enum status status = meter_create(setup->rate_hz, ear->relative, &ear->meter);
+    if (status == STATUS_OK)
+        status = health_create(setup->rate_hz, &setup->calibration, &ear->health);
+    if (status == STATUS_OK && setup->finds_impulses)
+        status = impulse_finder_create(setup->rate_hz, calibration_pa_per_unit(&setup->calibration),
+                                       &ear->impulses);
+    if (status == STATUS_OK && ear->listens)
+        status = tones_create(setup->classes, setup->n_classes, setup->rate_hz, &ear->tones);
+    if (status == STATUS_OK && ear->listens)
+        status = pulses_create(setup->classes, setup->n_classes, setup->rate_hz, &ear->pulses);
+    return status;
+}
+
+enum status ear_create(const struct ear_setup *setup, struct ear *ear)
+{
+    *ear = (struct ear){.channel = setup->channel,
+                        .listens = setup->calibration.role != ROLE_MEASURE && setup->n_classes > 0,
+                        .relative = !setup->calibration.known,
+                        .scale = (float)calibration_pa_per_unit(&setup->calibration),
+                        .sink = setup->sink};
+    ear->samples = calloc(setup->max_frames, sizeof(float));
+    ear->pascals = calloc(setup->max_frames, sizeof(float));
+    enum status status = ear->samples && ear->pascals ? create_parts(setup, ear) : STATUS_NO_MEMORY;
+    if (status != STATUS_OK)
+        ear_destroy(ear);
+    return status;
+}
+
+void ear_destroy(struct ear *ear)
+{
+    if (!ear)
+        return;
+    meter_destroy(ear->meter);
+    health_destroy(ear->health);
+    impulse_finder_destroy(ear->impulses);
+    tones_destroy(ear->tones);
+    pulses_destroy(ear->pulses);
+    free(ear->samples);
+    free(ear->pascals);
+    *ear = (struct ear){0};
+}
+
+static void take_fault(void *context, const struct found_fault *fault)
+{
+    const struct ear *ear = context;
+    ear->sink.fault(ear->sink.context, ear->channel, fault);
+}
+
+static void take_level(void *context, const struct found_level *level)
+{
+    struct ear *ear = context;
+    const struct fault_sink faults = {take_fault, ear};
+    ear->sink.level(ear->sink.context, ear->channel, level);
+    health_take_level(ear->health, level, &faults);
+}
+
+static void take_impulse(void *context, const struct found_impulse *impulse)
+{
+    const struct ear *ear = context;
+    ear->sink.impulse(ear->sink.context, ear->channel, impulse);
+}
+
+static void take_call(void *context, const struct found_call *call)
+{
+    const struct ear *ear = context;
+    ear->sink.call(ear->sink.context, ear->channel, call);
+}
+
+/* Own samples from interleaved ones, and their pascals; returns how many were not finite. */
+static uint32_t pick_channel(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
+{
+    uint32_t bad = 0;
+    const float *from = frames + (ear->channel - 1);
+    for (uint32_t i = 0; i < n; i++, from += n_channels) {
+        float sample = *from;
+        bad += !isfinite(sample);
+        ear->samples[i] = sample;
+        ear->pascals[i] = isfinite(sample) ? sample * ear->scale : 0.0F;
+    }
+    return bad;
+}
+
+bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
+{
+    const struct fault_sink faults = {take_fault, ear};
+    const struct level_sink levels = {take_level, ear};
+    const struct impulse_sink impulses = {take_impulse, ear};
+    const struct found_sink calls = {take_call, ear};
+    uint32_t bad = pick_channel(ear, frames, n, n_channels);
+    ear->n_not_finite += bad;
+    health_push(ear->health, ear->samples, n, &faults);
+    meter_push(ear->meter, ear->pascals, n, &levels);
+    if (ear->impulses)
+        impulse_finder_push(ear->impulses, ear->pascals, n, &impulses);
+    if (ear->listens) {
+        tones_push(ear->tones, ear->pascals, n, &calls);
+        pulses_push(ear->pulses, ear->pascals, n, &calls);
+    }
+    return bad == 0;
+}
+
+void ear_compare(const struct ear *earlier, struct ear *later)
+{
+    const struct fault_sink faults = {take_fault, later};
+    health_compare(earlier->health, later->health, &faults);
+}
+
+void ear_finish(struct ear *ear)
+{
+    const struct fault_sink faults = {take_fault, ear};
+    const struct level_sink levels = {take_level, ear};
+    const struct found_sink calls = {take_call, ear};
+    meter_finish(ear->meter, &levels);
+    health_finish(ear->health, &faults);
+    if (ear->listens) {
+        tones_finish(ear->tones, &calls);
+        pulses_finish(ear->pulses, &calls);
+    }
+}
+
+void ear_reset(struct ear *ear, uint64_t next_frame)
+{
+    ear_finish(ear);
+    meter_reset(ear->meter, next_frame);
+    health_reset(ear->health, next_frame);
+    if (ear->impulses)
+        impulse_finder_reset(ear->impulses, next_frame);
+    if (ear->listens) {
+        tones_reset(ear->tones, next_frame);
+        pulses_reset(ear->pulses, next_frame);
+    }
+}
