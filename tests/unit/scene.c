@@ -1,0 +1,417 @@
+/* lib/scene against closed forms: levels, delays, sameness, what is refused. */
+#include "support/test.h"
+
+#include "base/random.h"
+#include "base/units.h"
+#include "scene/path.h"
+#include "scene/render.h"
+#include "scene/schedule.h"
+#include <math.h>
+#include <stdlib.h>
+
+static struct scene scene;
+
+static int fresh(void **state)
+{
+    (void)state;
+    scene_reset(&scene);
+    scene.duration_s = 10;
+    scene.sea.ambient = false;
+    scene.n_hydrophones = 1;
+    scene.hydrophones[0].place = (struct scene_place){0, 0, 15};
+    /* 1 V/Pa and 10 V at full scale: 10 Pa, so that a level is easy to follow. */
+    scene.hydrophones[0].calibration =
+        (struct calibration){.known = true, .sensitivity_db = -120, .full_scale_v = 10};
+    return 0;
+}
+
+static void listen_near(void)
+{
+    scene.hydrophones[0].calibration.full_scale_v = 1e6;
+}
+
+static float *render_all(uint64_t first, uint32_t n)
+{
+    struct render *render;
+    assert_int_equal(render_create(&scene, &render), STATUS_OK);
+    float *out = malloc((size_t)n * scene.n_hydrophones * sizeof *out);
+    assert_non_null(out);
+    render_get(render, first, out, n);
+    render_destroy(render);
+    return out;
+}
+
+static double pa(void)
+{
+    return calibration_pa_per_unit(&scene.hydrophones[0].calibration);
+}
+
+/* Received level of a tone: source level - 20 lg(range) - absorption * range, Francois and Garrison (1982).
+ * At 1 kHz, 10 degree Celsius, salinity 35, pH 8 the absorption is 0.0601261 dB/km, at 20 kHz 3.34971 dB/km.
+ */
+static void a_tone_has_the_level_of_the_sonar_equation(void **state)
+{
+    (void)state;
+    static const struct {
+        double hz, absorption_db_km;
+    } tones[] = {{1000, 0.0601261}, {20000, 3.34971}};
+    for (int t = 0; t < 2; t++)
+        for (double range_m = 30; range_m < 4000; range_m *= 4) {
+            fresh(NULL);
+            scene.sea.salinity = 35;
+            scene.sea.depth_m = 0;
+            scene.n_animals = 1;
+            scene.animals[0] = scene_animal_of(VOICE_TONE);
+            scene.animals[0].frequency_hz = tones[t].hz;
+            scene.animals[0].length_s = 4;
+            scene.animals[0].end_s = 1; /* one call */
+            scene.animals[0].source_level_db = 150;
+            scene.animals[0].track.at_start = (struct scene_place){range_m, 0, 15};
+            float *out = render_all(0, 8 * 48000);
+            double exposure = 0;
+            for (int i = 0; i < 8 * 48000; i++)
+                exposure += (double)out[i] * (double)out[i] * pa() * pa() / 48000;
+            double want_db = 150 - 20 * log10(range_m) - tones[t].absorption_db_km * range_m / 1e3;
+            assert_near(units_spl_db(exposure / 4), want_db, 0.01);
+            free(out);
+        }
+}
+
+/* Received SEL of a blow: source energy level - 20 lg(range); absorption of its highest part is under 0.1 dB.
+ */
+static void a_blow_has_its_energy(void **state)
+{
+    (void)state;
+    for (double range_m = 50; range_m < 1000; range_m *= 3) {
+        fresh(NULL);
+        listen_near();
+        scene.n_hammers = 1;
+        scene.hammers[0] = scene_hammer_of();
+        scene.hammers[0].level_spread_db = 0;
+        scene.hammers[0].track.at_start = (struct scene_place){0, range_m, 15};
+        scene.hammers[0].n_steps = 1;
+        scene.hammers[0].steps[0] = (struct scene_step){1, 2, 205};
+        float *out = render_all(0, 3 * 48000);
+        double exposure = 0;
+        for (int i = 0; i < 3 * 48000; i++)
+            exposure += (double)out[i] * (double)out[i] * pa() * pa() / 48000;
+        assert_near(units_sel_db(exposure), 205 - 20 * log10(range_m), 0.1);
+        free(out);
+    }
+}
+
+/* Zero-to-peak level of a pulse; sampled four times a cycle or more, the highest sample is within 0.4 dB. */
+static void a_click_has_its_peak(void **state)
+{
+    (void)state;
+    listen_near();
+    scene.rate_hz = 768000;
+    scene.n_animals = 1;
+    scene.animals[0] = scene_animal_of(VOICE_PORPOISE_CLICKS);
+    scene.animals[0].source_level_db = 170;
+    scene.animals[0].pulses = 9; /* the strongest in the middle */
+    scene.animals[0].pulse_interval_s = 0.05;
+    scene.animals[0].track.at_start = (struct scene_place){2, 0, 15};
+    float *out = render_all(0, 768000);
+    double peak = 0;
+    for (int i = 0; i < 768000; i++)
+        peak = fmax(peak, fabs((double)out[i]) * pa());
+    assert_near(units_peak_db(peak), 170 - 20 * log10(2) - 0.08, 0.4);
+    free(out);
+}
+
+/* Two hydrophones hear the same tone, one later by path / speed of sound: the phase says so to a thousandth
+ * of a sample. */
+static void delays_are_exact_to_a_fraction_of_a_sample(void **state)
+{
+    (void)state;
+    scene.n_animals = 1;
+    scene.animals[0] = scene_animal_of(VOICE_TONE);
+    scene.animals[0].frequency_hz = 1000;
+    scene.animals[0].length_s = 6;
+    scene.animals[0].track.at_start = (struct scene_place){300, 40, 12};
+    scene.n_hydrophones = 2;
+    scene.hydrophones[1] = scene.hydrophones[0];
+    scene.hydrophones[1].place = (struct scene_place){-0.4, 0.1, 14};
+    struct path_sea sea = path_sea_of(&scene);
+    double range_m[2], phase[2];
+    float *out = render_all(0, 4 * 48000);
+    for (uint32_t c = 0; c < 2; c++) {
+        range_m[c] = path_range_m(&sea, &scene.animals[0].track.at_start, c, false);
+        double re = 0, im = 0;
+        for (int i = 2 * 48000; i < 4 * 48000; i++) {
+            double angle = 2 * M_PI * 1000 * i / 48000.0;
+            re += (double)out[2 * i + (int)c] * cos(angle);
+            im -= (double)out[2 * i + (int)c] * sin(angle);
+        }
+        phase[c] = atan2(im, re);
+    }
+    double delay_s = remainder(phase[0] - phase[1], 2 * M_PI) / (2 * M_PI * 1000);
+    assert_near(delay_s * 48000, (range_m[1] - range_m[0]) / sea.speed_m_s * 48000, 1e-3);
+    free(out);
+}
+
+/* A source that comes nearer at v sounds higher by v / (c - v), and is louder at the end. */
+static void a_moving_source_has_doppler(void **state)
+{
+    (void)state;
+    scene.n_animals = 1;
+    scene.animals[0] = scene_animal_of(VOICE_TONE);
+    scene.animals[0].frequency_hz = 1000;
+    scene.animals[0].length_s = 9;
+    scene.animals[0].track =
+        (struct scene_track){.at_start = {600, 0, 15}, .course_deg = 180, .speed_m_s = 8};
+    struct path_sea sea = path_sea_of(&scene);
+    float *out = render_all(0, 8 * 48000);
+    double phase[2];
+    for (int part = 0; part < 2; part++) { /* phase against 1 kHz in two windows 2 s apart */
+        double re = 0, im = 0;
+        int from = (3 + 2 * part) * 48000;
+        for (int i = from; i < from + 4800; i++) {
+            double angle = 2 * M_PI * 1000 * i / 48000.0;
+            re += (double)out[i] * cos(angle);
+            im -= (double)out[i] * sin(angle);
+        }
+        phase[part] = atan2(im, re);
+    }
+    double expected_cycles = 2.0 * 1000 * 8 / (sea.speed_m_s - 8);
+    assert_near(remainder((phase[1] - phase[0]) / (2 * M_PI) - expected_cycles, 1.0), 0, 0.01);
+    free(out);
+}
+
+/* With a mirror for a surface: p = e1/R1 - e2/R2 (Jensen et al., "Computational ocean acoustics", the Lloyd
+ * mirror).
+ */
+static void the_surface_makes_a_lloyd_mirror(void **state)
+{
+    (void)state;
+    scene.sea.surface_reflection = 1;
+    scene.n_animals = 1;
+    scene.animals[0] = scene_animal_of(VOICE_TONE);
+    scene.animals[0].frequency_hz = 500;
+    scene.animals[0].length_s = 6;
+    scene.animals[0].source_level_db = 160;
+    scene.animals[0].track.at_start = (struct scene_place){200, 0, 7};
+    struct path_sea sea = path_sea_of(&scene);
+    double k = 2 * M_PI * 500 / sea.speed_m_s, r1 = hypot(200, 15 - 7), r2 = hypot(200, 15 + 7);
+    double re = cos(k * r1) / r1 - cos(k * r2) / r2, im = sin(k * r1) / r1 - sin(k * r2) / r2;
+    float *out = render_all(0, 4 * 48000);
+    double sum = 0;
+    for (int i = 2 * 48000; i < 4 * 48000; i++)
+        sum += (double)out[i] * (double)out[i] * pa() * pa() / 96000;
+    /* Mean square over the whole tapered length is the source level's; in the middle it is 1 / (1 - 5/8
+     * taper). */
+    double want_db = 160 + units_amplitude_db(hypot(re, im)) - units_power_db(1 - 0.625 * 0.1);
+    assert_near(units_spl_db(sum), want_db, 0.02);
+    free(out);
+}
+
+static void fill(void)
+{
+    scene.seed = 11;
+    scene.duration_s = 40;
+    scene.sea.ambient = true;
+    scene.sea.surface_reflection = 0.6;
+    listen_near();
+    scene.n_hydrophones = 2;
+    scene.hydrophones[1] = scene.hydrophones[0];
+    scene.hydrophones[1].place.y_m = 30;
+    scene.n_animals = 4;
+    static const enum scene_voice voices[] = {VOICE_HUMPBACK_SONG, VOICE_DELPHINID_WHISTLE,
+                                              VOICE_SPERM_CLICKS, VOICE_FIN_PULSE};
+    for (int i = 0; i < 4; i++) {
+        scene.animals[i] = scene_animal_of(voices[i]);
+        scene.animals[i].track.speed_m_s = 2;
+        scene.animals[i].members = i == 1 ? 3 : 1;
+        scene.animals[i].start_s = i;
+    }
+    scene.n_hammers = 1;
+    scene.hammers[0] = scene_hammer_of();
+    scene.hammers[0].track.at_start.x_m = 700;
+    scene.hammers[0].n_steps = 2;
+    scene.hammers[0].steps[0] = (struct scene_step){10, 1.7, 190};
+    scene.hammers[0].steps[1] = (struct scene_step){30, 1.1, 205};
+    scene.n_ships = 1;
+    scene.ships[0] =
+        (struct scene_ship){.track = {.at_start = {900, 100, 5}, .course_deg = 90, .speed_m_s = 5},
+                            .n_lines = 2,
+                            .line_hz = {50, 121},
+                            .source_level_db = 140};
+    scene.n_echosounders = 1;
+    scene.echosounders[0] = (struct scene_echosounder){.track = {.at_start = {50, 50, 3}},
+                                                       .end_s = 1e9,
+                                                       .frequency_hz = 18000,
+                                                       .ping_s = 0.002,
+                                                       .ping_interval_s = 0.7,
+                                                       .source_level_db = 190};
+    scene.shrimp.snaps_per_s = 5;
+}
+
+/* The same bits whole, in random pieces, after jumps forward and back, and from a second object. */
+static void sameness_whatever_the_chunking(void **state)
+{
+    (void)state;
+    fill();
+    const uint32_t n = 30 * 48000;
+    float *whole = render_all(0, n), *again = render_all(0, n), *piece = malloc(n * 2 * sizeof *piece);
+    assert_memory_equal(whole, again, n * 2 * sizeof *whole);
+    struct render *render;
+    assert_int_equal(render_create(&scene, &render), STATUS_OK);
+    struct random random;
+    random_reset(&random, 5);
+    for (uint32_t at = 0; at < n;) {
+        uint32_t count = 1 + (uint32_t)(random_bits(&random) % 9001);
+        count = count < n - at ? count : n - at;
+        render_get(render, at, piece + 2 * (size_t)at, count);
+        at += count;
+    }
+    assert_memory_equal(whole, piece, n * 2 * sizeof *whole);
+    for (int jump = 0; jump < 40; jump++) {
+        uint32_t count = 1 + (uint32_t)(random_bits(&random) % 5000);
+        uint32_t at = (uint32_t)(random_bits(&random) % (n - count));
+        render_get(render, at, piece, count);
+        assert_memory_equal(whole + 2 * (size_t)at, piece, count * 2 * sizeof *whole);
+    }
+    render_destroy(render);
+    free(whole);
+    free(again);
+    free(piece);
+}
+
+/* Another seed is another noise; one animal more leaves the calls of the others alone. */
+static void seeds_and_neighbours(void **state)
+{
+    (void)state;
+    fill();
+    static struct schedule schedules[SCHEDULE_MAX];
+    static struct emission before[10], after;
+    schedule_list(&scene, schedules);
+    for (int i = 0; i < 10; i++)
+        assert_true(schedule_next(&schedules[0], &before[i]));
+    scene.animals[3].members = 7;
+    schedule_list(&scene, schedules);
+    for (int i = 0; i < 10; i++) {
+        assert_true(schedule_next(&schedules[0], &after));
+        assert_true(after.start_s == before[i].start_s && after.sound.length_s == before[i].sound.length_s);
+        assert_true(i == 0 || after.start_s > before[i - 1].start_s);
+    }
+    fresh(NULL);
+    scene.sea.ambient = true;
+    scene.n_hydrophones = 2;
+    scene.hydrophones[1] = scene.hydrophones[0];
+    float *one = render_all(0, 48000);
+    scene.seed++;
+    float *two = render_all(0, 48000);
+    double seeds = 0, channels = 0, power = 0;
+    for (int i = 0; i < 96000; i += 2) {
+        seeds += (double)one[i] * (double)two[i];
+        channels += (double)one[i] * (double)one[i + 1];
+        power += (double)one[i] * (double)one[i];
+    }
+    /* Most of the power is below some 100 Hz: a few hundred independent values in a second. */
+    assert_true(fabs(seeds / power) < 0.25 && fabs(channels / power) < 0.25);
+    free(one);
+    free(two);
+}
+
+static void a_converter_clips(void **state)
+{
+    (void)state;
+    scene.n_hammers = 1;
+    scene.hammers[0] = scene_hammer_of();
+    scene.hammers[0].track.at_start.x_m = 20;
+    scene.hammers[0].n_steps = 1;
+    scene.hammers[0].steps[0] = (struct scene_step){5, 1, 215};
+    float *out = render_all(0, 5 * 48000);
+    float high = 0, low = 0;
+    for (int i = 0; i < 5 * 48000; i++) {
+        high = out[i] > high ? out[i] : high;
+        low = out[i] < low ? out[i] : low;
+    }
+    assert_true(high == 1.0f && low == -1.0f);
+    free(out);
+}
+
+/* Intervals of the published order, and jitter that is an animal's: 3 to 20 %, where a machine has under 1 %.
+ */
+static void rhythms(void **state)
+{
+    (void)state;
+    scene.rate_hz = 384000;
+    scene.duration_s = 600;
+    static const struct {
+        enum scene_voice voice;
+        double low_s, high_s, jitter_low, jitter_high;
+    } wants[] = {{VOICE_PORPOISE_CLICKS, 0.03, 0.2, 0.01, 0.08},
+                 {VOICE_DELPHINID_CLICKS, 0.01, 0.2, 0.05, 0.3},
+                 {VOICE_SPERM_CLICKS, 0.45, 1.0, 0.02, 0.08}};
+    for (int v = 0; v < 3; v++) {
+        scene.n_animals = 1;
+        scene.animals[0] = scene_animal_of(wants[v].voice);
+        struct schedule schedule;
+        static struct emission call;
+        schedule_list(&scene, &schedule);
+        double sum2 = 0;
+        int n = 0;
+        while (schedule_next(&schedule, &call)) {
+            for (uint32_t i = 1; i + 1 < call.n_pulses; i++) {
+                double before_s = call.pulse_s[i] - call.pulse_s[i - 1],
+                       after_s = call.pulse_s[i + 1] - call.pulse_s[i];
+                assert_true(before_s >= wants[v].low_s - 1e-9 && before_s <= wants[v].high_s + 1e-9);
+                sum2 += log(after_s / before_s) * log(after_s / before_s);
+                n++;
+            }
+        }
+        double jitter = sqrt(sum2 / n);
+        print_message("# figure %s: %d intervals, sd of ln(ratio) %.3f\n", scene_voice_text(wants[v].voice),
+                      n, jitter);
+        assert_true(n > 100 && jitter > wants[v].jitter_low && jitter < wants[v].jitter_high);
+    }
+}
+
+static void impossible_scenes_are_refused(void **state)
+{
+    (void)state;
+    char problem[SCENE_TEXT_SIZE];
+    struct render *render = NULL;
+    fill();
+    assert_int_equal(scene_check(&scene, 0, problem), STATUS_OK);
+    scene.n_animals = 5;
+    scene.animals[4] = scene_animal_of(VOICE_PORPOISE_CLICKS); /* not at 48 kHz */
+    scene.animals[0].track =
+        (struct scene_track){.at_start = {100, 0, 15}, .course_deg = 180, .speed_m_s = 5};
+    scene.hydrophones[1].calibration.known = false;
+    static const char *const words[] = {"calibration", "nearer", "sampling rate"};
+    for (uint32_t i = 0; i < 3; i++) {
+        assert_int_equal(scene_check(&scene, i, problem), STATUS_OUT_OF_RANGE);
+        assert_non_null(strstr(problem, words[i]));
+    }
+    assert_int_equal(scene_check(&scene, 3, problem), STATUS_OK);
+    assert_int_equal(render_create(&scene, &render), STATUS_BAD_ARGUMENT);
+    fresh(NULL);
+    scene.n_animals = 1; /* 20 clicks a second from 100 km away: more than 512 on their way */
+    scene.animals[0] = scene_animal_of(VOICE_TONE);
+    scene.animals[0].interval_s = 0.05;
+    scene.animals[0].track.at_start.x_m = 100000;
+    assert_int_equal(render_create(&scene, &render), STATUS_BAD_ARGUMENT);
+    assert_null(render);
+    render_destroy(NULL);
+}
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test_setup(a_tone_has_the_level_of_the_sonar_equation, fresh),
+        cmocka_unit_test_setup(a_blow_has_its_energy, fresh),
+        cmocka_unit_test_setup(a_click_has_its_peak, fresh),
+        cmocka_unit_test_setup(delays_are_exact_to_a_fraction_of_a_sample, fresh),
+        cmocka_unit_test_setup(a_moving_source_has_doppler, fresh),
+        cmocka_unit_test_setup(the_surface_makes_a_lloyd_mirror, fresh),
+        cmocka_unit_test_setup(sameness_whatever_the_chunking, fresh),
+        cmocka_unit_test_setup(seeds_and_neighbours, fresh),
+        cmocka_unit_test_setup(a_converter_clips, fresh),
+        cmocka_unit_test_setup(rhythms, fresh),
+        cmocka_unit_test_setup(impossible_scenes_are_refused, fresh),
+    };
+    return cmocka_run_group_tests_name("scene", tests, NULL, NULL);
+}
