@@ -21,7 +21,7 @@
 
 /* ---- a disk whose syncs fail: this definition comes before the C library's for SQLite too */
 
-static volatile int sync_failures; /* how many of the next fdatasync calls fail; -1: all */
+static _Atomic int sync_failures; /* how many of the next fdatasync calls fail; -1: all */
 
 int fdatasync(int fd)
 {
