@@ -54,6 +54,27 @@ static enum status load_rules(struct chain *chain, struct problems *problems)
     return permit != STATUS_OK ? permit : calls;
 }
 
+void chain_check(struct site *site, struct problems *problems)
+{
+    struct permit *permit = calloc(1, sizeof *permit);
+    struct catalogue *catalogue = calloc(1, sizeof *catalogue);
+    if (permit && catalogue && *site->permit && *site->calls) {
+        permit_load(site->permit, problems, permit);
+        catalogue_load(site->calls, problems, &site->effective, catalogue);
+    }
+    free(permit);
+    free(catalogue);
+    for (uint32_t i = 0; i < site->n_streams; i++) {
+        const struct input_kind *kind = input_find(site->streams[i].input);
+        struct input_facts facts;
+        void *input = NULL;
+        if (!kind || strcmp(kind->name, "device") == 0 || strcmp(kind->name, "pcm") == 0)
+            continue;
+        if (kind->open(&site->streams[i], problems, &input, &facts) == STATUS_OK)
+            kind->close(input);
+    }
+}
+
 static void take_column(void *context, uint32_t stream, const struct column *column)
 {
     const struct chain *chain = context;

@@ -41,8 +41,8 @@ uint32_t chain_get_port(const struct chain *chain); /* 0 without pages */
 uint32_t chain_count_streams(const struct chain *chain);
 struct stream *chain_get_stream(struct chain *chain, uint32_t number); /* from 1; borrowed */
 
-/* Checks everything that settings name without starting anything: permit, catalogue, scene and recording
- * files. */
-enum status chain_check(const char *settings_path, struct problems *problems, struct text *effective);
+/* Looks at what the settings name, without starting anything: permit, call catalogue, recordings and scenes
+ * (a device or a pipe is not touched). Adds to problems. */
+void chain_check(struct site *site, struct problems *problems);
 
 #endif

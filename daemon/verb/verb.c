@@ -3,6 +3,7 @@
 #include <stddef.h>
 
 const struct verb verbs[] = {
+    {"scan", "listen to recordings and write a ledger", verb_scan},
     {"verify", "check that a ledger is as it was written", verb_verify},
     {NULL, NULL, NULL},
 };

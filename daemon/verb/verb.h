@@ -22,5 +22,6 @@ extern const struct verb verbs[];
 
 int verb_verify(int argc, char **argv);
 int verb_report(int argc, char **argv);
+int verb_scan(int argc, char **argv);
 
 #endif

@@ -80,7 +80,7 @@ static uint32_t pick_channel(struct ear *ear, const float *frames, uint32_t n, u
     const float *from = frames + (ear->channel - 1);
     for (uint32_t i = 0; i < n; i++, from += n_channels) {
         float sample = *from;
-        bad += !isfinite(sample);
+        bad += isfinite(sample) ? 0 : 1;
         ear->samples[i] = sample;
         ear->pascals[i] = isfinite(sample) ? sample * ear->scale : 0.0F;
     }
