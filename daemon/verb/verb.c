@@ -5,5 +5,6 @@
 const struct verb verbs[] = {
     {"scan", "listen to recordings and write a ledger", verb_scan},
     {"verify", "check that a ledger is as it was written", verb_verify},
+    {"render", "render a scene to a WAV file and its truth to JSON", verb_render},
     {NULL, NULL, NULL},
 };

@@ -22,6 +22,7 @@ extern const struct verb verbs[];
 
 int verb_verify(int argc, char **argv);
 int verb_report(int argc, char **argv);
+int verb_render(int argc, char **argv);
 int verb_scan(int argc, char **argv);
 
 #endif
