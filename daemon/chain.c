@@ -128,6 +128,10 @@ static enum status open_ledger(struct chain *chain, struct problems *problems)
                                 .evidence_decay_s = site->evidence_decay_s,
                                 .sighting_log_spread = site->sighting_log_spread,
                                 .silence_s = site->silence_s};
+    for (uint32_t i = 0; i < chain->n_streams; i++)
+        for (uint32_t c = 0; c < stream_get_facts(chain->streams[i])->n_channels; c++)
+            if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
+                setup.listening[i] |= 1U << c;
     status = watch_create(&setup, &chain->watch);
     if (status == STATUS_OK)
         status = restore_watch(chain->ledger, chain->watch, &chain->restored, problem);
