@@ -16,6 +16,8 @@
 #define WATCH_MAX_TIMERS 12
 #define WATCH_MAX_CONTACTS 64
 #define WATCH_MAX_ADVICE 32
+#define WATCH_MAX_STREAMS 8
+#define WATCH_MAX_ACKNOWLEDGEMENTS 6 /* of one advice: a station's newest replaces its former */
 
 struct watch_setup {
     const struct permit *permit; /* borrowed for the life of the watch */
@@ -25,6 +27,9 @@ struct watch_setup {
     double evidence_decay_s;     /* time constant with which log-odds fade */
     double sighting_log_spread;  /* doubt of a distance that a person gives */
     double silence_s; /* no impulse for this long, and nothing said: the source is heard as silent */
+    /* The channels (bit 0: channel 1) of streams 1, 2 ... that listen. Time is unheard for the acoustic watch
+     * when none of them hears. All 0: channel 1 of stream 1. */
+    uint32_t listening[WATCH_MAX_STREAMS];
 };
 
 struct watch;
@@ -65,14 +70,23 @@ struct watch_contact {
     int64_t countdown_ends_ns; /* -1 where no verdict is awaited */
 };
 
+struct watch_acknowledgement {
+    char station[NOTE_NAME_SIZE];
+    char person[NOTE_NAME_SIZE];
+    char answer[NOTE_NAME_SIZE]; /* "seen", "passed", "stopped", "declined" */
+    int64_t known_ns;
+};
+
 struct watch_advice {
     struct advice_outcome advice;
     char id[FLOW_ID_SIZE];
     int64_t since_ns;
     bool in_force;
-    bool acknowledged;
+    bool acknowledged; /* by anybody; the newest: */
     char acknowledged_by[NOTE_NAME_SIZE];
     char answer[NOTE_NAME_SIZE];
+    uint32_t n_acknowledgements; /* one a station */
+    struct watch_acknowledgement acknowledgements[WATCH_MAX_ACKNOWLEDGEMENTS];
 };
 
 /* A copy of all that people may see; plain data. */

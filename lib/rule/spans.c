@@ -1,0 +1,69 @@
+/* Stretches of watch time: union, intersection, difference. */
+#include "rule/spans.h"
+#include <string.h>
+
+static void append(struct spans *spans, int64_t start_ns, int64_t end_ns)
+{
+    if (end_ns <= start_ns)
+        return;
+    if (spans->n == SPANS_MAX)
+        memmove(spans->all, spans->all + 1, --spans->n * sizeof spans->all[0]);
+    spans->all[spans->n++] = (struct span){start_ns, end_ns};
+}
+
+void spans_add(struct spans *spans, int64_t start_ns, int64_t end_ns)
+{
+    if (end_ns <= start_ns)
+        return;
+    struct spans old = *spans;
+    spans->n = 0;
+    uint32_t i = 0;
+    for (; i < old.n && old.all[i].end_ns < start_ns; i++)
+        append(spans, old.all[i].start_ns, old.all[i].end_ns);
+    for (; i < old.n && old.all[i].start_ns <= end_ns; i++) {
+        start_ns = old.all[i].start_ns < start_ns ? old.all[i].start_ns : start_ns;
+        end_ns = old.all[i].end_ns > end_ns ? old.all[i].end_ns : end_ns;
+    }
+    append(spans, start_ns, end_ns);
+    for (; i < old.n; i++)
+        append(spans, old.all[i].start_ns, old.all[i].end_ns);
+}
+
+void spans_common(const struct spans *a, const struct spans *b, struct spans *out)
+{
+    struct spans common = {0};
+    for (uint32_t i = 0, k = 0; i < a->n && k < b->n;) {
+        const struct span *x = &a->all[i], *y = &b->all[k];
+        append(&common, x->start_ns > y->start_ns ? x->start_ns : y->start_ns,
+               x->end_ns < y->end_ns ? x->end_ns : y->end_ns);
+        if (x->end_ns < y->end_ns)
+            i++;
+        else
+            k++;
+    }
+    *out = common;
+}
+
+void spans_without(const struct spans *a, const struct spans *b, struct spans *out)
+{
+    struct spans rest = {0};
+    for (uint32_t i = 0; i < a->n; i++) {
+        int64_t from = a->all[i].start_ns;
+        for (uint32_t k = 0; k < b->n; k++) {
+            if (b->all[k].end_ns <= from || b->all[k].start_ns >= a->all[i].end_ns)
+                continue;
+            append(&rest, from, b->all[k].start_ns);
+            from = b->all[k].end_ns;
+        }
+        append(&rest, from, a->all[i].end_ns);
+    }
+    *out = rest;
+}
+
+int64_t spans_total_ns(const struct spans *spans)
+{
+    int64_t total = 0;
+    for (uint32_t i = 0; i < spans->n; i++)
+        total += spans->all[i].end_ns - spans->all[i].start_ns;
+    return total;
+}

@@ -1,0 +1,165 @@
+/* The watch: events in, time, outcomes out. */
+#include "rule/watch.h"
+#include "rule/watch_inner.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+static bool setup_is_good(const struct watch_setup *setup)
+{
+    char problem[PERMIT_TEXT_SIZE];
+    return setup->permit && permit_check(setup->permit, 0, problem) == STATUS_OK &&
+           setup->contact_gap_s > 0 && setup->contact_gap_s < 1e6 && setup->evidence_decay_s > 0 &&
+           isfinite(setup->look_evidence) && setup->act_evidence >= setup->look_evidence &&
+           setup->sighting_log_spread >= 0 && setup->silence_s > 0 && setup->silence_s < 1e6;
+}
+
+enum status watch_create(const struct watch_setup *setup, struct watch **out)
+{
+    if (!setup_is_good(setup))
+        return STATUS_BAD_ARGUMENT;
+    struct watch *watch = calloc(1, sizeof *watch);
+    if (!watch)
+        return STATUS_NO_MEMORY;
+    watch->setup = *setup;
+    watch->permit = setup->permit;
+    watch->run = 1;
+    watch->phase = PHASE_OFF;
+    watch->effort.hole_ns = -1;
+    watch->source.said = PHASE_OFF;
+    watch->source.said_ns = watch->source.impulse_ns = -1;
+    watch->source.soft_start_ns = watch->source.quiet_ns = -1;
+    *out = watch;
+    return STATUS_OK;
+}
+
+void watch_destroy(struct watch *watch)
+{
+    free(watch);
+}
+
+/* Everything that follows from the present state at the present time. */
+static void settle(struct watch *watch)
+{
+    contact_expire(watch);
+    source_settle(watch);
+    phase_settle(watch);
+    advice_settle(watch);
+}
+
+static int64_t next_due_ns(const struct watch *watch)
+{
+    int64_t due = effort_due_ns(watch);
+    if (source_due_ns(watch) < due)
+        due = source_due_ns(watch);
+    if (contact_due_ns(watch) < due)
+        due = contact_due_ns(watch);
+    return due;
+}
+
+/* Each timer that is due by to_ns fires at its own time, so it does not matter how often this is called. */
+static void pass_time(struct watch *watch, int64_t to_ns)
+{
+    for (int64_t due; (due = next_due_ns(watch)) <= to_ns;) {
+        effort_accrue(watch, due);
+        watch->now_ns = due;
+        why_reset(&watch->recent, "", "%s", "");
+        settle(watch);
+    }
+    effort_accrue(watch, to_ns);
+    watch->now_ns = to_ns;
+}
+
+/* The outage before a run: clearance times run on through it, the pre-watch does not accrue, and what would
+ * have been said meanwhile is said at its end, when there is somebody to hear it. */
+static void pass_outage(struct watch *watch, const struct event *event)
+{
+    const struct run_mark *mark = &event->as.run_mark;
+    if (mark->outage_start_ns > watch->now_ns)
+        pass_time(watch, mark->outage_start_ns < event->known_ns ? mark->outage_start_ns : event->known_ns);
+    memset(watch->counters, 0, sizeof watch->counters);
+    watch->run = event->run;
+    bool outage = mark->outage_end_ns > mark->outage_start_ns;
+    if (outage) {
+        effort_outage(watch, true);
+        watch->released_by[0] = watch->release_id[0] = '\0';
+    }
+    effort_accrue(watch, event->known_ns);
+    watch->now_ns = event->known_ns;
+    if (outage)
+        effort_outage(watch, false);
+}
+
+static void set_recent(struct watch *watch, const struct event *event)
+{
+    char id[FLOW_ID_SIZE];
+    flow_id(event->run, event->stream, flow_event_kind_text(event->kind), event->counter, id);
+    why_reset(&watch->recent, "", "%s", "");
+    why_add_cause(&watch->recent, id);
+}
+
+static void complete(const struct watch *watch, struct event *event)
+{
+    if (event->kind == EVENT_IMPULSE)
+        source_mark_impulse(watch, &event->as.impulse);
+    if (event->kind == EVENT_NOTE) {
+        event->as.note.known_ns = event->known_ns;
+        if (event->as.note.occurred_ns == 0)
+            event->as.note.occurred_ns = event->known_ns;
+    }
+}
+
+static void take(struct watch *watch, const struct event *event)
+{
+    switch (event->kind) {
+    case EVENT_UNHEARD:
+        effort_unheard(watch, event);
+        break;
+    case EVENT_IMPULSE:
+        source_take_impulse(watch, event);
+        break;
+    case EVENT_CALL:
+        contact_take_call(watch, event);
+        break;
+    case EVENT_NOTE:
+        note_take(watch, &event->as.note);
+        break;
+    case EVENT_RUN:
+    case EVENT_LEVEL:
+        break;
+    }
+}
+
+enum status watch_push(struct watch *watch, const struct event *event, const struct outcome_sink *sink)
+{
+    if (event->known_ns < watch->now_ns || (unsigned)event->kind > EVENT_NOTE)
+        return STATUS_BAD_ARGUMENT;
+    if (event->kind == EVENT_CALL && (unsigned)event->as.call.group >= GROUP_COUNT)
+        return STATUS_BAD_ARGUMENT;
+    if (event->kind == EVENT_NOTE && (unsigned)event->as.note.group >= GROUP_COUNT)
+        return STATUS_BAD_ARGUMENT;
+    watch->sink = sink;
+    if (event->kind == EVENT_RUN)
+        pass_outage(watch, event);
+    else
+        pass_time(watch, event->known_ns);
+    struct event completed = *event;
+    complete(watch, &completed);
+    watch_say_event(watch, &completed);
+    set_recent(watch, &completed);
+    take(watch, &completed);
+    if (event->kind != EVENT_LEVEL)
+        settle(watch);
+    watch->sink = NULL;
+    return STATUS_OK;
+}
+
+enum status watch_advance(struct watch *watch, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    if (watch_ns < watch->now_ns)
+        return STATUS_BAD_ARGUMENT;
+    watch->sink = sink;
+    pass_time(watch, watch_ns);
+    watch->sink = NULL;
+    return STATUS_OK;
+}

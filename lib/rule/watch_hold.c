@@ -1,0 +1,63 @@
+/* What the contacts together hold back. */
+#include "base/time.h"
+#include "rule/watch_inner.h"
+
+static void earlier(int64_t *due, int64_t now_ns, int64_t at_ns)
+{
+    if (at_ns > now_ns && at_ns < *due)
+        *due = at_ns;
+}
+
+int64_t contact_due_ns(const struct watch *watch)
+{
+    int64_t due = INT64_MAX, gap_ns = time_from_s(watch->setup.contact_gap_s);
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        const struct contact *contact = &watch->contacts.all[i];
+        if (contact->state == CONTACT_DISMISSED)
+            continue;
+        if (contact->holding)
+            for (uint32_t zone = 0; zone < watch->permit->n_zones; zone++)
+                earlier(&due, watch->now_ns, contact_zone_clear_ns(contact, watch->permit, zone));
+        else if (contact->state == CONTACT_OPEN)
+            earlier(&due, watch->now_ns, contact->last_ns + gap_ns);
+        if (contact->asked && !contact->passed)
+            earlier(&due, watch->now_ns, contact->countdown_ends_ns);
+    }
+    return due;
+}
+
+const struct contact *contact_lead(const struct watch *watch, bool crew)
+{
+    const struct contact *lead = NULL;
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        const struct contact *contact = &watch->contacts.all[i];
+        enum permit_action wanted = contact_wanted(watch, contact);
+        if (contact->asked && (contact->passed || !crew) && wanted >= ACTION_PREPARE &&
+            (!lead || wanted > contact_wanted(watch, lead)))
+            lead = contact;
+    }
+    return lead;
+}
+
+const struct contact *contact_holder(const struct watch *watch, bool questions)
+{
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        const struct contact *contact = &watch->contacts.all[i];
+        if (contact->holding && contact_holds_start(contact, watch->permit, watch->now_ns) &&
+            (questions || !contact_is_question(contact, watch->permit, watch->now_ns)))
+            return contact;
+    }
+    return NULL;
+}
+
+int64_t contact_all_clear_ns(const struct watch *watch)
+{
+    int64_t latest = -1;
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        const struct contact *contact = &watch->contacts.all[i];
+        int64_t clears = contact_clears_at_ns(contact, watch->permit, watch->now_ns);
+        if (contact->holding && clears > latest)
+            latest = clears;
+    }
+    return latest;
+}

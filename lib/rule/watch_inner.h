@@ -1,0 +1,207 @@
+/* What the files of the watch share; nobody else includes it.
+ *
+ *   watch.c          create, push, advance: time, and what is due when
+ *   watch_note.c     what people enter
+ *   watch_contact.c  calls, sightings, verdicts: contacts and their episodes
+ *   watch_source.c   what the source does, as said and as heard, and what departs from the permit
+ *   watch_effort.c   who is on watch, what was heard, how much of the pre-watch is done
+ *   watch_phase.c    the table of phases and triggers, and the reasons
+ *   watch_advice.c   what each station is told
+ *   watch_say.c      outcomes and their ids
+ *   watch_view.c     what people see
+ */
+#ifndef RULE_WATCH_INNER_H
+#define RULE_WATCH_INNER_H
+
+#include "rule/contact.h"
+#include "rule/spans.h"
+#include "rule/watch.h"
+
+#define WATCH_MAX_CHANNELS (WATCH_MAX_STREAMS * FLOW_MAX_CHANNELS)
+
+/* Why something is so, and the entries that it rests on. */
+struct why {
+    char text[FLOW_TEXT_SIZE];
+    char clause[FLOW_TEXT_SIZE];
+    uint32_t n_causes;
+    char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
+};
+
+/* Who is on watch, and how much of the pre-watch is done. */
+struct effort {
+    uint32_t n_people;
+    struct watch_person people[WATCH_MAX_PEOPLE];
+    bool outage;       /* the program is not running */
+    bool accruing;     /* since from_ns */
+    int64_t from_ns;   /* of the present stretch */
+    struct spans kept; /* the stretches before it */
+    int64_t credit_ns; /* at mark_ns */
+    int64_t mark_ns;
+    int64_t hole_ns;                          /* since when the watch is not kept; -1 while it is */
+    struct spans unheard[WATCH_MAX_CHANNELS]; /* of each channel, lately */
+    struct spans deaf;                        /* when no listening channel heard, lately */
+    char deaf_id[FLOW_ID_SIZE];
+};
+
+/* What the source does. */
+struct source {
+    enum phase said; /* PHASE_OFF, PHASE_BREAK for 'stopped', else the phase that the crew entered */
+    int64_t said_ns; /* -1: never */
+    char said_id[FLOW_ID_SIZE];
+    bool heard;         /* impulses are being heard */
+    int64_t impulse_ns; /* the last one */
+    char impulse_id[FLOW_ID_SIZE];
+    bool heard_in_phase;             /* since the source began to sound */
+    bool contradicted;               /* a finding about the present contradiction has been made */
+    bool too_long;                   /* a finding about the present soft start has been made */
+    int64_t soft_start_ns, quiet_ns; /* when the soft start began, when silence did; -1 */
+    enum phase before_break;
+    char job[IMPULSE_JOB_SIZE];
+    uint32_t n_impulses;
+};
+
+enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
+
+/* Why an advice is given; with word, contact and confirmed it says whether it is the same advice. */
+enum advice_ground {
+    GROUND_NONE,
+    GROUND_OFF,
+    GROUND_PRE_WATCH,
+    GROUND_RELEASE,
+    GROUND_RELEASED,
+    GROUND_CONTACT,
+    GROUND_DEAF,
+    GROUND_UNWATCHED,
+    GROUND_SOUND,
+    GROUND_BREAK,
+    GROUND_STOPPED,
+    GROUND_ENDED
+};
+
+struct advice_key {
+    enum advice_word word;
+    enum advice_ground ground;
+    uint32_t contact; /* 0: none */
+    bool confirmed;
+};
+
+struct watch {
+    struct watch_setup setup;
+    const struct permit *permit;
+    const struct outcome_sink *sink; /* of the call in progress */
+    int64_t now_ns;
+    uint32_t run;
+    uint64_t counters[OUTCOME_FINDING + 1];
+
+    enum phase phase;
+    int64_t phase_since_ns;
+    struct why phase_why;
+    char phase_id[FLOW_ID_SIZE];
+    char released_by[NOTE_NAME_SIZE];
+    char release_id[FLOW_ID_SIZE];
+    struct why recent; /* the event that is being taken, as a reason; empty when a timer is */
+    struct why let_go; /* why the last contact no longer holds anything back */
+
+    struct effort effort;
+    struct source source;
+    struct contacts contacts;
+
+    struct advice_key keys[STATION_COUNT];
+    uint32_t n_advice; /* newest first */
+    struct watch_advice advice[WATCH_MAX_ADVICE];
+};
+
+/* watch_say.c: outcomes, their counters and ids */
+void why_reset(struct why *why, const char *clause, const char *format, ...)
+    __attribute__((format(printf, 3, 4)));
+/* Empty ids and ids that are there already are left out, as are those beyond the room. */
+void why_add_cause(struct why *why, const char *id);
+void why_add_contact(struct why *why, const struct contact *contact);
+void watch_say_event(struct watch *watch, const struct event *event);
+void watch_say_contact(struct watch *watch, struct contact *contact);
+void watch_say_phase(struct watch *watch, enum phase phase, const struct why *why);
+void watch_say_finding(struct watch *watch, const char *code, const char *grade, const struct why *why);
+/* Gives the advice to the station; it becomes the station's newest. */
+void watch_say_advice(struct watch *watch, const struct advice_outcome *advice);
+
+/* watch_effort.c */
+bool effort_on_watch(const struct watch *watch, const char *person); /* as visual or acoustic observer */
+bool effort_anybody(const struct watch *watch);                      /* any observer at all */
+/* Whether all whom the permit needs are on watch; if not, who is missing, in words. */
+bool effort_kept(const struct watch *watch, const char **out_missing);
+void effort_sign_on(struct watch *watch, const struct note *note);
+void effort_sign_off(struct watch *watch, const struct note *note);
+void effort_unheard(struct watch *watch, const struct event *event);
+/* Whether nothing has been heard for so long that nothing can be said, where the permit needs ears. */
+bool effort_deaf(const struct watch *watch);
+int64_t effort_needed_ns(const struct watch *watch);
+bool effort_complete(const struct watch *watch);
+void effort_accrue(struct watch *watch, int64_t to_ns); /* lets time pass */
+void effort_update(struct watch *watch);                /* after anything has changed */
+void effort_begin_anew(struct watch *watch);
+void effort_outage(struct watch *watch, bool outage);
+int64_t effort_due_ns(const struct watch *watch); /* INT64_MAX: nothing */
+/* When the pre-watch will be complete if nothing changes; -1 where it does not accrue. */
+int64_t effort_ready_ns(const struct watch *watch);
+/* "Ann (visual), Bo (acoustic)". */
+void effort_names(const struct watch *watch, char out[FLOW_TEXT_SIZE]);
+
+/* watch_source.c */
+bool source_sounds(enum phase phase);
+void source_note(struct watch *watch, const struct note *note);
+void source_job(struct watch *watch, const struct note *note);
+/* Whose impulse it is, and of which job: before the event goes out. */
+void source_mark_impulse(const struct watch *watch, struct impulse *impulse);
+void source_take_impulse(struct watch *watch, const struct event *event);
+void source_settle(struct watch *watch); /* silence, and a soft start that is too long */
+int64_t source_due_ns(const struct watch *watch);
+/* The first moment at which silence has been too long for a break. */
+int64_t source_break_over_ns(const struct watch *watch);
+void source_enter_phase(struct watch *watch, enum phase from, enum phase to); /* findings, times */
+
+/* watch_contact.c */
+void contact_take_call(struct watch *watch, const struct event *event);
+void contact_take_sighting(struct watch *watch, const struct note *note);
+void contact_take_distance(struct watch *watch, const struct note *note);
+void contact_take_verdict(struct watch *watch, const struct note *note);
+void contact_expire(struct watch *watch);  /* clearance times that are over, contacts that have gone quiet */
+void contact_present(struct watch *watch); /* puts new ones to the observer, passes others to the crew */
+int64_t contact_due_ns(const struct watch *watch);
+/* What the contact asks for in the present phase. */
+enum permit_action contact_wanted(const struct watch *watch, const struct contact *contact);
+/* The contact that asks for most: of those that went to the crew, or of all that were put to the observer. */
+const struct contact *contact_lead(const struct watch *watch, bool crew);
+/* The first that holds the start back; `questions` says whether open questions count. NULL for none. */
+const struct contact *contact_holder(const struct watch *watch, bool questions);
+/* When the last of those that hold the start back is clear; -1 for none. */
+int64_t contact_all_clear_ns(const struct watch *watch);
+
+/* watch_phase.c */
+enum trigger {
+    TRIGGER_SAID_SOUND,   /* the crew says that the source sounds, and how */
+    TRIGGER_SAID_STOPPED, /* ... that it has stopped for now */
+    TRIGGER_SAID_OFF,     /* ... that the work is over */
+    TRIGGER_HEARD,        /* impulses of the job are heard though nobody said that the source sounds */
+    TRIGGER_SILENT,       /* no impulse for silence_s, and nothing said */
+    TRIGGER_BREAK_OVER,   /* the silence is longer than a break may be */
+    TRIGGER_HELD,         /* a contact holds the start back */
+    TRIGGER_FREE,         /* none does any more */
+    TRIGGER_ALONE,        /* no observer is on watch */
+    TRIGGER_WATCH,        /* look again: who is on watch, the pre-watch, the contacts */
+    TRIGGER_COUNT
+};
+/* Changes the phase as the table says; a reason is made where why is NULL. */
+void phase_take(struct watch *watch, enum trigger trigger, const struct why *why);
+/* The triggers that hold now, until none changes anything. */
+void phase_settle(struct watch *watch);
+
+/* watch_advice.c */
+void advice_settle(struct watch *watch);
+void advice_acknowledge(struct watch *watch, const struct note *note);
+
+/* watch_note.c */
+void note_take(struct watch *watch, const struct note *note);
+/* A note that makes no sense now: a finding says so. */
+void note_without_effect(struct watch *watch, const char *format, ...) __attribute__((format(printf, 2, 3)));
+
+#endif

@@ -1,0 +1,285 @@
+/* What the source does, as said and as heard, and what departs from the permit. */
+#include "base/time.h"
+#include "rule/watch_inner.h"
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+/* The last blows before somebody enters 'stopped' contradict nobody. */
+#define GRACE_NS (5 * TIME_NS_PER_S)
+
+bool source_sounds(enum phase phase)
+{
+    switch (phase) {
+    case PHASE_SOFT_START:
+    case PHASE_HOLD:
+    case PHASE_FULL_POWER:
+    case PHASE_REDUCED:
+    case PHASE_VIBRO:
+    case PHASE_DRILLING:
+    case PHASE_LINE_TURN:
+    case PHASE_TEST:
+        return true;
+    default:
+        return false;
+    }
+}
+
+void source_note(struct watch *watch, const struct note *note)
+{
+    static const struct {
+        const char *word;
+        enum phase said;
+        enum trigger trigger;
+    } states[] = {
+        {"off", PHASE_OFF, TRIGGER_SAID_OFF},
+        {"stopped", PHASE_BREAK, TRIGGER_SAID_STOPPED},
+        {"soft start", PHASE_SOFT_START, TRIGGER_SAID_SOUND},
+        {"full power", PHASE_FULL_POWER, TRIGGER_SAID_SOUND},
+        {"hold", PHASE_HOLD, TRIGGER_SAID_SOUND},
+        {"reduced", PHASE_REDUCED, TRIGGER_SAID_SOUND},
+        {"vibro", PHASE_VIBRO, TRIGGER_SAID_SOUND},
+        {"drilling", PHASE_DRILLING, TRIGGER_SAID_SOUND},
+        {"line turn", PHASE_LINE_TURN, TRIGGER_SAID_SOUND},
+        {"test", PHASE_TEST, TRIGGER_SAID_SOUND},
+    };
+    struct source *source = &watch->source;
+    for (size_t i = 0; i < sizeof states / sizeof states[0]; i++)
+        if (strcmp(note->source_state, states[i].word) == 0) {
+            source->said = states[i].said;
+            source->said_ns = watch->now_ns;
+            source->contradicted = false;
+            snprintf(source->said_id, sizeof source->said_id, "%s", watch->recent.causes[0]);
+            phase_take(watch, states[i].trigger, &watch->recent);
+            return;
+        }
+    note_without_effect(watch, "'%.40s' is no state of the source", note->source_state);
+}
+
+void source_job(struct watch *watch, const struct note *note)
+{
+    struct source *source = &watch->source;
+    if (strcmp(note->answer, "open") == 0) {
+        snprintf(source->job, sizeof source->job, "%.31s", note->job);
+        source->n_impulses = 0;
+    } else if (strcmp(source->job, note->job) == 0)
+        source->job[0] = '\0';
+    else
+        note_without_effect(watch, "job %.31s is not open", note->job);
+}
+
+void source_mark_impulse(const struct watch *watch, struct impulse *impulse)
+{
+    const struct source *source = &watch->source;
+    bool ours = *source->job && source_sounds(source->said);
+    impulse->whose = ours ? IMPULSE_OURS : IMPULSE_UNKNOWN;
+    snprintf(impulse->job, sizeof impulse->job, "%s", source->job);
+}
+
+static void find_contradiction(struct watch *watch, bool of_job)
+{
+    struct source *source = &watch->source;
+    if (source->contradicted)
+        return;
+    source->contradicted = true;
+    const char *said = source->said == PHASE_OFF ? "off" : "stopped";
+    char code[NOTE_NAME_SIZE];
+    struct why why;
+    why_reset(&why, watch->permit->soft_start_clause,
+              of_job ? "impulses are heard and job %.31s is open, but the source is said to be %s"
+                     : "impulses are heard%.0s and no job is open: they may be another project's; the source "
+                       "is said to be %s",
+              source->job, said);
+    why_add_cause(&why, source->impulse_id);
+    why_add_cause(&why, source->said_id);
+    snprintf(code, sizeof code, "source heard while %s", said);
+    watch_say_finding(watch, code, of_job ? "firm" : "indicative", &why);
+}
+
+static void find_during_stop(struct watch *watch)
+{
+    struct source *source = &watch->source;
+    const struct contact *lead = contact_lead(watch, true);
+    if (source->contradicted)
+        return;
+    source->contradicted = true;
+    struct why why;
+    why_reset(&why, watch->phase_why.clause, "impulses of job %.31s are heard during a shutdown",
+              source->job);
+    why_add_cause(&why, source->impulse_id);
+    why_add_cause(&why, watch->phase_id);
+    if (lead)
+        why_add_contact(&why, lead);
+    watch_say_finding(watch, "source heard during a stop", "firm", &why);
+}
+
+void source_take_impulse(struct watch *watch, const struct event *event)
+{
+    struct source *source = &watch->source;
+    const struct impulse *impulse = &event->as.impulse;
+    bool of_job = *source->job != '\0', quiet_said = !source_sounds(source->said);
+    bool late = source->said_ns >= 0 && impulse->time_ns <= source->said_ns + GRACE_NS;
+    source->heard = true;
+    if (impulse->time_ns > source->impulse_ns)
+        source->impulse_ns = impulse->time_ns < watch->now_ns ? impulse->time_ns : watch->now_ns;
+    flow_id(event->run, event->stream, "impulse", event->counter, source->impulse_id);
+    source->n_impulses += impulse->whose == IMPULSE_OURS;
+    if (!source_sounds(watch->phase) && !(quiet_said && late)) {
+        if (of_job && watch->phase == PHASE_SHUTDOWN)
+            find_during_stop(watch);
+        else if (quiet_said)
+            find_contradiction(watch, of_job);
+        struct why why;
+        why_reset(&why, watch->permit->soft_start_clause, "impulses of job %.31s are heard", source->job);
+        why_add_cause(&why, source->impulse_id);
+        if (of_job)
+            phase_take(watch, TRIGGER_HEARD, &why);
+    }
+    source->heard_in_phase = source->heard_in_phase || source_sounds(watch->phase);
+}
+
+int64_t source_break_over_ns(const struct watch *watch)
+{
+    int64_t limit = time_from_s(watch->permit->break_minutes * 60);
+    return watch->source.quiet_ns + limit + (watch->permit->break_limit_resumes ? TIME_NS_PER_US : 0);
+}
+
+static int64_t silence_ns(const struct watch *watch)
+{
+    return watch->source.impulse_ns + time_from_s(watch->setup.silence_s);
+}
+
+static int64_t too_long_ns(const struct watch *watch)
+{
+    double minutes = watch->permit->soft_start_max_minutes;
+    bool limited = watch->phase == PHASE_SOFT_START && minutes < 1e6 && !watch->source.too_long;
+    return limited ? watch->source.soft_start_ns + time_from_s(minutes * 60) + TIME_NS_PER_US : INT64_MAX;
+}
+
+static bool in_break(const struct watch *watch)
+{
+    return watch->phase == PHASE_BREAK || watch->phase == PHASE_POST_WATCH;
+}
+
+int64_t source_due_ns(const struct watch *watch)
+{
+    int64_t due = too_long_ns(watch);
+    if (watch->source.heard && silence_ns(watch) < due)
+        due = silence_ns(watch);
+    if (in_break(watch) && source_break_over_ns(watch) > watch->now_ns && source_break_over_ns(watch) < due)
+        due = source_break_over_ns(watch);
+    return due;
+}
+
+static void fall_silent(struct watch *watch)
+{
+    struct source *source = &watch->source;
+    source->heard = source->contradicted = false;
+    if (!source->heard_in_phase || !source_sounds(watch->phase))
+        return;
+    int64_t last_ns = source->impulse_ns;
+    struct why why;
+    why_reset(&why, watch->permit->break_clause, "no impulse has been heard for %g s",
+              watch->setup.silence_s);
+    why_add_cause(&why, source->impulse_id);
+    phase_take(watch, TRIGGER_SILENT, &why);
+    if (!source_sounds(watch->phase))
+        source->quiet_ns = last_ns;
+}
+
+void source_settle(struct watch *watch)
+{
+    struct source *source = &watch->source;
+    if (source->heard && watch->now_ns >= silence_ns(watch))
+        fall_silent(watch);
+    if (watch->now_ns >= too_long_ns(watch)) {
+        source->too_long = true;
+        struct why why;
+        why_reset(&why, watch->permit->soft_start_clause, "the soft start has lasted longer than %g minutes",
+                  watch->permit->soft_start_max_minutes);
+        why_add_cause(&why, watch->phase_id);
+        watch_say_finding(watch, "soft start too long", "firm", &why);
+    }
+}
+
+/* The source begins to sound: was it allowed to? */
+static void judge_start(struct watch *watch, enum phase from)
+{
+    const struct permit *permit = watch->permit;
+    const struct contact *holder = contact_holder(watch, true);
+    struct why why;
+    const char *code = NULL, *missing = "";
+    if (from == PHASE_BREAK) {
+        code = effort_kept(watch, &missing) ? NULL : "resumed without a watch";
+        why_reset(&why, permit->break_clause, "the source resumes after a break and %s", missing);
+    } else if (from == PHASE_DELAY || from == PHASE_SHUTDOWN || (from == PHASE_READY && holder)) {
+        code = from == PHASE_SHUTDOWN ? "start during a stop" : "start during a delay";
+        char text[FLOW_TEXT_SIZE] = "";
+        if (holder)
+            contact_describe(holder, permit, watch->now_ns, text);
+        why_reset(&why, watch->phase_why.clause, "the source starts: %.200s", text);
+        if (holder)
+            why_add_contact(&why, holder);
+    } else if (from == PHASE_READY) {
+        code = *watch->released_by ? NULL : "start without release";
+        why_reset(&why, permit->pre_watch_clause, "the source starts and no observer has released the start");
+    } else {
+        code = "start without a complete pre-watch";
+        why_reset(&why, permit->pre_watch_clause, "the source starts after %.1f of %g minutes of pre-watch",
+                  time_to_s(watch->effort.credit_ns) / 60, permit->pre_watch_minutes);
+    }
+    if (!code)
+        return;
+    why_add_cause(&why, watch->phase_id);
+    watch_say_finding(watch, code, "firm", &why);
+}
+
+static void judge_full_power(struct watch *watch, enum phase from)
+{
+    struct source *source = &watch->source;
+    const struct permit *permit = watch->permit;
+    enum phase before = from == PHASE_BREAK ? source->before_break : from;
+    bool after_soft_start = source->soft_start_ns >= 0 &&
+                            (before == PHASE_SOFT_START || before == PHASE_HOLD || before == PHASE_REDUCED);
+    int64_t lasted = watch->now_ns - source->soft_start_ns;
+    struct why why;
+    if (after_soft_start && lasted < time_from_s(permit->soft_start_min_minutes * 60)) {
+        why_reset(&why, permit->soft_start_clause, "full power after %.1f of at least %g minutes",
+                  time_to_s(lasted) / 60, permit->soft_start_min_minutes);
+        why_add_cause(&why, watch->phase_id);
+        watch_say_finding(watch, "soft start too short", "firm", &why);
+    } else if (!source_sounds(before) && permit->soft_start_min_minutes > 0) {
+        why_reset(&why, permit->soft_start_clause, "full power without a soft start");
+        why_add_cause(&why, watch->phase_id);
+        watch_say_finding(watch, "soft start missing", "firm", &why);
+    }
+    source->soft_start_ns = -1;
+}
+
+void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
+{
+    struct source *source = &watch->source;
+    bool begins = source_sounds(to) && !source_sounds(from), ends = source_sounds(from) && !source_sounds(to);
+    if (begins && to != PHASE_DRILLING && to != PHASE_LINE_TURN)
+        judge_start(watch, from);
+    if (to == PHASE_FULL_POWER)
+        judge_full_power(watch, from);
+    bool goes_on =
+        from == PHASE_HOLD || from == PHASE_REDUCED || (from == PHASE_BREAK && source->soft_start_ns >= 0);
+    if (to == PHASE_SOFT_START && !(goes_on && source->soft_start_ns >= 0)) {
+        source->soft_start_ns = watch->now_ns;
+        source->too_long = false;
+    }
+    if (begins) {
+        source->quiet_ns = -1;
+        if (watch->permit->break_watch != BREAK_WATCH_STANDS)
+            effort_begin_anew(watch);
+    }
+    if (ends) {
+        source->quiet_ns = watch->now_ns;
+        source->before_break = from;
+        source->heard_in_phase = false;
+    }
+    if (!source_sounds(to) && to != PHASE_BREAK)
+        source->soft_start_ns = -1;
+}
