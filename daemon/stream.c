@@ -7,6 +7,7 @@
 #include <math.h>
 #include <pthread.h>
 #include <stdatomic.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -211,6 +212,9 @@ static void *run_stream(void *context)
     struct stream *stream = context;
     const struct block_sink blocks = {take_block, stream};
     const struct event_sink events = {take_event, stream};
+    char name[16];
+    snprintf(name, sizeof name, "stream %u", stream->setup.number % 100);
+    pthread_setname_np(pthread_self(), name);
     float_mode_flush_to_zero();
     uint32_t max_frames = flow_block_frames(stream->facts.rate_hz);
     enum status status = STATUS_OK;

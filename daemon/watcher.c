@@ -282,6 +282,7 @@ static enum status step(struct watcher *watcher)
 static void *run_watch(void *context)
 {
     struct watcher *watcher = context;
+    pthread_setname_np(pthread_self(), "watch");
     float_mode_flush_to_zero();
     while (step(watcher) != STATUS_END)
         ;
