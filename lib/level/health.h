@@ -1,16 +1,19 @@
 /* What is wrong with one channel: clipped, dead, frozen, too quiet to be in the water, a copy of another.
  *
  * Criteria (common practice, no source, where none is named):
- *   clipping    two or more samples in a row at least full scale less one step of 16 bits (1 - 2^-15);
- *               clipped runs less than 0.1 s apart are one interval
- *   dead        every sample the same (zeros or any constant) for at least 0.5 s, found in cells of 256
- * frames frozen      the last 0.5 s repeat exactly with some period of at most 0.25 s, as a driver does that
- * plays one buffer over and over; looked for twice a second too quiet   a second's SPL is at most 0.5 dB
- * above the stated self-noise, or, on a calibrated channel, each decidecade from 500 Hz to 5 kHz is 10 dB or
- * more below the calmest sea: 44.5 dB re 1 uPa2/Hz at 1 kHz, falling 17 dB a decade (sea state 0 of Knudsen,
- * Alford and Emling, "Underwater ambient noise", J. Mar. Res. 7, 1948). Never on a relative channel. A
- * hydrophone in air can be louder than that. duplicate   two channels equal in every cell of half a second:
- * least, greatest and sum of its samples
+ *   clipping    two or more samples in a row at least full scale less one step of 16 bits (1 -
+ *               2^-15); clipped runs less than 0.1 s apart are one interval
+ *   dead        every sample the same (zeros or any constant) for at least 0.5 s, found in cells of
+ *               256 frames
+ *   frozen      the last 0.5 s repeat exactly with some period of at most 0.25 s, as a driver does
+ *               that plays one buffer over and over; looked for twice a second
+ *   too quiet   a second's SPL is at most 0.5 dB above the stated self-noise, or, on a calibrated
+ *               channel, each decidecade from 500 Hz to 5 kHz is 10 dB or more below the calmest
+ *               sea: 44.5 dB re 1 uPa2/Hz at 1 kHz, falling 17 dB a decade (sea state 0 of Knudsen,
+ *               Alford and Emling, "Underwater ambient noise", J. Mar. Res. 7, 1948). Never on a
+ *               relative channel. A hydrophone in air can be louder than that.
+ *   duplicate   two channels equal in every cell of half a second: least, greatest and sum of its
+ *               samples
  *
  * An interval is given in adjoining pieces, the first after half a second, each as long as all before it and
  * at most 10 s, so that a fault is known early and a long one makes few entries.
