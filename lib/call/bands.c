@@ -1,0 +1,212 @@
+/* Band-pass bank and slot powers. */
+#include "call/bands.h"
+#include "dsp/filter.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define LANES 4
+#define SECTIONS 3
+#define WINDOW_POINTS 96
+#define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
+
+typedef float lanes __attribute__((vector_size(16)));
+
+struct group {
+    lanes gain, a1[SECTIONS], a2[SECTIONS];
+    lanes s1[SECTIONS], s2[SECTIONS];
+};
+
+struct bands {
+    uint32_t n, n_groups, slot_frames, block_slots, history_slots;
+    struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
+    double delay[BANDS_MAX];
+    struct group groups[BANDS_MAX / LANES];
+    float *power; /* [n_groups * LANES][history_slots + block_slots] */
+};
+
+bool bands_rate_carries(double rate_hz, struct band_edges edges)
+{
+    return edges.low_hz > 0 && edges.high_hz > edges.low_hz && edges.high_hz <= BANDS_HIGHEST * rate_hz;
+}
+
+static double energy_centre(struct filter filter)
+{
+    double energy = 0, moment = 0;
+    for (int k = 0; k < RESPONSE_FRAMES; k++) {
+        double h = filter_step(&filter, k == 0);
+        energy += h * h;
+        moment += k * h * h;
+    }
+    return moment / energy;
+}
+
+/* Autocorrelation of filtered white noise: the response against itself, lag frames later. */
+static double autocorrelation(struct filter filter, uint32_t lag)
+{
+    struct filter later = filter;
+    for (uint32_t k = 0; k < lag; k++)
+        filter_step(&later, k == 0);
+    double sum = 0, recent = 0, greatest = 0;
+    for (uint32_t k = 0; k < RESPONSE_FRAMES; k++) {
+        double h = filter_step(&filter, k == 0);
+        sum += h * filter_step(&later, k + lag == 0);
+        recent = fmax(recent * 0.998, fabs(h));
+        greatest = fmax(greatest, recent);
+        if (recent < 1e-4 * greatest)
+            break;
+    }
+    return sum;
+}
+
+/* Traces of the first powers of the correlation matrix R of m points of the window: m, tr R^2, tr R^3. The
+ * sum of squares of Gaussian variables so correlated has the cumulants m, 2 tr R^2, 8 tr R^3. */
+enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
+                                 struct window_statistics *out)
+{
+    uint32_t n = n_slots * bands->slot_frames;
+    uint32_t m = n < WINDOW_POINTS ? n : WINDOW_POINTS; /* the correlation is smooth between them */
+    double *r = malloc(m * sizeof *r);
+    if (!r)
+        return STATUS_NO_MEMORY;
+    double zero = autocorrelation(bands->filters[b], 0);
+    for (uint32_t k = 0; k < m; k++)
+        r[k] = autocorrelation(bands->filters[b], (uint32_t)((uint64_t)k * n / m)) / zero;
+    double square = 0, cube = 0;
+    for (uint32_t i = 0; i < m; i++)
+        for (uint32_t j = 0; j < m; j++) {
+            double ij = r[i > j ? i - j : j - i];
+            square += ij * ij;
+            for (uint32_t k = 0; k < m; k++)
+                cube += ij * r[j > k ? j - k : k - j] * r[k > i ? k - i : i - k];
+        }
+    free(r);
+    out->freedom = (double)m * m / square;
+    out->skewness = 8 * cube / pow(2 * square, 1.5);
+    return STATUS_OK;
+}
+
+static void fill_group(struct bands *bands, uint32_t g)
+{
+    struct group *group = &bands->groups[g];
+    for (uint32_t l = 0; l < LANES; l++) {
+        uint32_t b = g * LANES + l;
+        const struct filter *filter = &bands->filters[b < bands->n ? b : bands->n - 1];
+        double gain = 1; /* the zeros, three at 0 Hz and three at half the rate, are split evenly */
+        for (int s = 0; s < SECTIONS; s++) {
+            gain *= filter->sections[s].b0;
+            group->a1[s][l] = (float)filter->sections[s].a1;
+            group->a2[s][l] = (float)filter->sections[s].a2;
+        }
+        group->gain[l] = (float)gain;
+    }
+}
+
+enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_t n, uint32_t slot_frames,
+                         uint32_t block_slots, uint32_t history_slots, struct bands **out)
+{
+    if (!edges || !out || n < 1 || n > BANDS_MAX || slot_frames < 1 || block_slots < 1)
+        return STATUS_BAD_ARGUMENT;
+    for (uint32_t b = 0; b < n; b++)
+        if (!bands_rate_carries(rate_hz, edges[b]))
+            return STATUS_BAD_ARGUMENT;
+    struct bands *bands = aligned_alloc(16, (sizeof *bands + 15) / 16 * 16);
+    if (!bands)
+        return STATUS_NO_MEMORY;
+    memset(bands, 0, sizeof *bands);
+    bands->n = n;
+    bands->n_groups = (n + LANES - 1) / LANES;
+    bands->slot_frames = slot_frames;
+    bands->block_slots = block_slots;
+    bands->history_slots = history_slots;
+    bands->power = calloc((size_t)bands->n_groups * LANES * (history_slots + block_slots), sizeof(float));
+    if (!bands->power) {
+        bands_destroy(bands);
+        return STATUS_NO_MEMORY;
+    }
+    for (uint32_t b = 0; b < n; b++) {
+        filter_band_pass(SECTIONS, edges[b].low_hz, edges[b].high_hz, rate_hz, &bands->filters[b]);
+        bands->delay[b] = energy_centre(bands->filters[b]);
+    }
+    for (uint32_t g = 0; g < bands->n_groups; g++)
+        fill_group(bands, g);
+    *out = bands;
+    return STATUS_OK;
+}
+
+void bands_reset(struct bands *bands)
+{
+    for (uint32_t g = 0; g < bands->n_groups; g++) {
+        memset(bands->groups[g].s1, 0, sizeof bands->groups[g].s1);
+        memset(bands->groups[g].s2, 0, sizeof bands->groups[g].s2);
+    }
+    memset(bands->power, 0,
+           sizeof(float) * bands->n_groups * LANES * (bands->history_slots + bands->block_slots));
+}
+
+/* Transposed direct form II. s1 is written without y, so that the chain from frame to frame is one product
+ * and one sum long. */
+static inline lanes section(lanes x, lanes a1, lanes a2, lanes *s1, lanes *s2)
+{
+    lanes y = x + *s1;
+    *s1 = (*s2 - a1 * x) - a1 * *s1;
+    *s2 = -x - a2 * y;
+    return y;
+}
+
+static void filter_group(struct bands *bands, struct group *group, const float *x, float *out)
+{
+    struct group g = *group;
+    size_t stride = bands->history_slots + bands->block_slots;
+    const float scale = 1.0F / (float)bands->slot_frames;
+    for (uint32_t slot = 0; slot < bands->block_slots; slot++) {
+        lanes sum = {0};
+        for (uint32_t k = 0; k < bands->slot_frames; k++, x++) {
+            lanes v = {*x, *x, *x, *x};
+            v *= g.gain;
+            v = section(v, g.a1[0], g.a2[0], &g.s1[0], &g.s2[0]);
+            v = section(v, g.a1[1], g.a2[1], &g.s1[1], &g.s2[1]);
+            v = section(v, g.a1[2], g.a2[2], &g.s1[2], &g.s2[2]);
+            sum += v * v;
+        }
+        for (uint32_t l = 0; l < LANES; l++)
+            out[l * stride + slot] = sum[l] * scale;
+    }
+    *group = g;
+}
+
+void bands_push(struct bands *bands, const float *samples)
+{
+    size_t stride = bands->history_slots + bands->block_slots;
+    bool finite = true;
+    for (uint32_t g = 0; g < bands->n_groups; g++) {
+        float *rows = bands->power + g * LANES * stride;
+        for (uint32_t l = 0; l < LANES; l++)
+            memmove(rows + l * stride, rows + l * stride + bands->block_slots,
+                    bands->history_slots * sizeof(float));
+        filter_group(bands, &bands->groups[g], samples, rows + bands->history_slots);
+        for (uint32_t l = 0; l < LANES; l++)
+            finite = finite && isfinite(rows[l * stride + stride - 1]);
+    }
+    if (!finite)
+        bands_reset(bands);
+}
+
+const float *bands_get_power(const struct bands *bands, uint32_t b)
+{
+    size_t stride = bands->history_slots + bands->block_slots;
+    return bands->power + b * stride + bands->history_slots;
+}
+
+double bands_get_delay(const struct bands *bands, uint32_t b)
+{
+    return bands->delay[b];
+}
+
+void bands_destroy(struct bands *bands)
+{
+    if (!bands)
+        return;
+    free(bands->power);
+    free(bands);
+}

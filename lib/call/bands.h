@@ -1,0 +1,51 @@
+/* A bank of band-pass filters of one channel and the short-time power behind each: the front end that all
+ * pulse classes share. Butterworth band-passes of order 3 (bilinear transform with prewarped edges, Oppenheim
+ * and Schafer, "Discrete-Time Signal Processing", section 7.2), four of them side by side in one vector, so
+ * that four bands cost what one would. Power is summed over *slots* of a few frames; a pulse detector adds
+ * slots up to its own window. */
+#ifndef CALL_BANDS_H
+#define CALL_BANDS_H
+
+#include "base/status.h"
+#include <stdbool.h>
+#include <stdint.h>
+
+#define BANDS_MAX 16
+#define BANDS_HIGHEST 0.472 /* of the rate: the highest edge that a rate carries */
+
+struct band_edges {
+    double low_hz, high_hz;
+};
+
+struct bands;
+
+/* True when the rate carries the band: 0 < low < high <= BANDS_HIGHEST * rate. */
+bool bands_rate_carries(double rate_hz, struct band_edges edges);
+
+/* A bank of n (1..BANDS_MAX) bands at rate_hz, slots of slot_frames (>= 1), pushed block_slots at a time,
+ * with the last history_slots before a block kept readable. STATUS_BAD_ARGUMENT for a band that the rate does
+ * not carry or a zero size; STATUS_NO_MEMORY. The caller owns *out. */
+enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_t n, uint32_t slot_frames,
+                         uint32_t block_slots, uint32_t history_slots, struct bands **out);
+void bands_reset(struct bands *bands);
+/* Takes block_slots * slot_frames samples. Samples that are not finite empty the filters (the block then has
+ * no power) instead of staying in them for ever. */
+void bands_push(struct bands *bands, const float *samples);
+/* Mean square of each slot of the last block in band b: [block_slots], with [-history_slots .. -1] before it
+ * readable. Valid until the next push. */
+const float *bands_get_power(const struct bands *bands, uint32_t b);
+/* Frames by which band b is late: the centre of its impulse response's energy. */
+double bands_get_delay(const struct bands *bands, uint32_t b);
+/* How the power over a window of n slots is distributed in white Gaussian noise, computed from the filter.
+ * Its cumulants are those of a weighted sum of chi-square variables, the weights being the eigenvalues of the
+ * window's correlation matrix. */
+struct window_statistics {
+    double freedom;  /* 2 mean^2 / variance (Urkowitz 1967: 2 W T for an ideal band) */
+    double skewness; /* third cumulant over variance^(3/2) */
+};
+/* STATUS_NO_MEMORY. For use at start. */
+enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
+                                 struct window_statistics *out);
+void bands_destroy(struct bands *bands);
+
+#endif
