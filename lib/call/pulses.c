@@ -1,0 +1,365 @@
+/* All train classes of one channel. */
+#include "call/pulses.h"
+#include "call/bands.h"
+#include "call/trains.h"
+#include "call/trigger.h"
+#include "dsp/decimate.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define SLOTS_PER_PULSE                                                                                      \
+    6                      /* of the shortest pulse of a stage: costs less than 0.1 dB against every sample  \
+                            */
+#define BLOCK_SLOTS 64     /* at the full rate */
+#define SLOW_BLOCK_SLOTS 8 /* on a decimated copy, where a slot is long */
+#define DECIMATE_BELOW 50  /* a class runs decimated when its highest edge is below rate / 50 ... */
+#define DECIMATED_RATE 5   /* ... at a rate of at least 5 times that edge */
+#define PIECE_FRAMES 1024  /* pushed to a decimator at a time */
+#define MAX_STAGES 8
+
+/* Classes that run at one rate. */
+struct stage {
+    uint32_t factor;
+    double rate_hz;
+    uint32_t slot_frames, block_slots, block_frames, history_slots;
+    struct decimator *decimator; /* NULL for factor 1 */
+    struct bands *bands;
+    struct band_edges edges[BANDS_MAX];
+    uint32_t n_edges;
+    float *block; /* [block_frames] */
+    uint32_t filled;
+    uint64_t n_blocks; /* since the last reset */
+};
+
+/* One hearable class. */
+struct ear {
+    const struct call_class *call_class;
+    uint32_t class_index, stage, band, guard;
+    struct trigger *trigger;
+    struct trains *trains;
+    uint64_t rejections[REJECT_COUNT];
+};
+
+struct pulses {
+    double rate_hz;
+    uint64_t first_frame;
+    uint32_t n_stages, n_ears;
+    struct stage stages[MAX_STAGES];
+    struct ear ears[CATALOGUE_MAX_CLASSES];
+    float decimated[PIECE_FRAMES + 1];
+    const struct found_sink *sink; /* of the push at hand */
+    uint64_t known_frame;
+};
+
+static double highest_hz(const struct call_class *call_class)
+{
+    return fmax(call_class->high_hz, call_class->train.guard_high_hz);
+}
+
+static uint32_t factor_of(const struct call_class *call_class, double rate_hz)
+{
+    double highest = highest_hz(call_class);
+    if (highest * DECIMATE_BELOW > rate_hz)
+        return 1;
+    uint32_t factor = 1; /* powers of two: the rates that share one are few */
+    while (2 * factor * DECIMATED_RATE * highest <= rate_hz)
+        factor *= 2;
+    return factor;
+}
+
+static bool is_hearable(const struct call_class *call_class, double rate_hz)
+{
+    struct band_edges band = {call_class->low_hz, call_class->high_hz};
+    struct band_edges guard = {call_class->train.guard_low_hz, call_class->train.guard_high_hz};
+    return call_class->form == CALL_TRAIN && bands_rate_carries(rate_hz, band) &&
+           (guard.high_hz <= 0 || bands_rate_carries(rate_hz, guard));
+}
+
+/* Index of a band in a stage's list, added where it is new; BANDS_MAX when the list is full. */
+static uint32_t add_edges(struct stage *stage, double low_hz, double high_hz)
+{
+    for (uint32_t i = 0; i < stage->n_edges; i++)
+        if (stage->edges[i].low_hz == low_hz && stage->edges[i].high_hz == high_hz)
+            return i;
+    if (stage->n_edges == BANDS_MAX)
+        return BANDS_MAX;
+    stage->edges[stage->n_edges] = (struct band_edges){low_hz, high_hz};
+    return stage->n_edges++;
+}
+
+static struct stage *stage_of(struct pulses *pulses, uint32_t factor, uint32_t *out_index)
+{
+    uint32_t s = 0;
+    while (s < pulses->n_stages && pulses->stages[s].factor != factor)
+        s++;
+    if (s == MAX_STAGES)
+        return NULL;
+    if (s == pulses->n_stages) {
+        pulses->stages[s].factor = factor;
+        pulses->stages[s].rate_hz = pulses->rate_hz / factor;
+        pulses->n_stages++;
+    }
+    *out_index = s;
+    return &pulses->stages[s];
+}
+
+static enum status add_ear(struct pulses *pulses, const struct call_class *call_class, uint32_t class_index)
+{
+    struct ear *ear = &pulses->ears[pulses->n_ears];
+    *ear = (struct ear){.call_class = call_class, .class_index = class_index};
+    struct stage *stage = stage_of(pulses, factor_of(call_class, pulses->rate_hz), &ear->stage);
+    if (!stage)
+        return STATUS_BAD_ARGUMENT;
+    const struct train_shape *shape = &call_class->train;
+    ear->band = add_edges(stage, call_class->low_hz, call_class->high_hz);
+    if (shape->guard_high_hz > 0)
+        ear->guard = add_edges(stage, shape->guard_low_hz, shape->guard_high_hz);
+    if (ear->band == BANDS_MAX || ear->guard == BANDS_MAX)
+        return STATUS_BAD_ARGUMENT;
+    uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * stage->rate_hz / SLOTS_PER_PULSE));
+    if (!stage->slot_frames || slot < stage->slot_frames)
+        stage->slot_frames = slot;
+    pulses->n_ears++;
+    return STATUS_OK;
+}
+
+static enum status create_stage(struct pulses *pulses, uint32_t index)
+{
+    struct stage *stage = &pulses->stages[index];
+    stage->block_slots = stage->factor == 1 ? BLOCK_SLOTS : SLOW_BLOCK_SLOTS;
+    stage->block_frames = stage->block_slots * stage->slot_frames;
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        if (pulses->ears[e].stage != index)
+            continue;
+        uint32_t slots = trigger_get_history(pulses->ears[e].call_class, stage->rate_hz, stage->slot_frames);
+        stage->history_slots = slots > stage->history_slots ? slots : stage->history_slots;
+    }
+    stage->block = calloc(stage->block_frames, sizeof *stage->block);
+    if (!stage->block)
+        return STATUS_NO_MEMORY;
+    enum status status = bands_create(stage->rate_hz, stage->edges, stage->n_edges, stage->slot_frames,
+                                      stage->block_slots, stage->history_slots, &stage->bands);
+    if (status == STATUS_OK && stage->factor > 1)
+        status = decimator_create(stage->factor, &stage->decimator);
+    return status;
+}
+
+static double noise_rate_of(const void *context, double snr)
+{
+    return trigger_get_noise_rate(context, snr);
+}
+
+static enum status create_ear(struct pulses *pulses, struct ear *ear)
+{
+    const struct stage *stage = &pulses->stages[ear->stage];
+    struct trigger_setup setup = {
+        .call_class = ear->call_class,
+        .bands = stage->bands,
+        .band = ear->band,
+        .guard = ear->guard,
+        .rate_hz = stage->rate_hz,
+        .slot_frames = stage->slot_frames,
+        .block_slots = stage->block_slots,
+        .frames_per_frame = stage->factor,
+        .delay_frames = stage->decimator ? decimator_get_delay(stage->decimator) : 0,
+    };
+    enum status status = trigger_create(&setup, &ear->trigger);
+    if (status != STATUS_OK)
+        return status;
+    struct noise_rate noise = {noise_rate_of, ear->trigger};
+    return trains_create(ear->call_class, pulses->rate_hz, noise, &ear->trains);
+}
+
+enum status pulses_create(const struct call_class *classes, uint32_t n_classes, double rate_hz,
+                          struct pulses **out)
+{
+    if (!classes || !out || n_classes > CATALOGUE_MAX_CLASSES || !(rate_hz >= 1000) || !(rate_hz <= 1e6))
+        return STATUS_BAD_ARGUMENT;
+    struct pulses *pulses = calloc(1, sizeof *pulses);
+    if (!pulses)
+        return STATUS_NO_MEMORY;
+    pulses->rate_hz = rate_hz;
+    enum status status = STATUS_OK;
+    for (uint32_t c = 0; c < n_classes && status == STATUS_OK; c++)
+        if (is_hearable(&classes[c], rate_hz))
+            status = add_ear(pulses, &classes[c], c);
+    for (uint32_t s = 0; s < pulses->n_stages && status == STATUS_OK; s++)
+        status = create_stage(pulses, s);
+    for (uint32_t e = 0; e < pulses->n_ears && status == STATUS_OK; e++)
+        status = create_ear(pulses, &pulses->ears[e]);
+    if (status != STATUS_OK) {
+        pulses_destroy(pulses);
+        return status;
+    }
+    *out = pulses;
+    return STATUS_OK;
+}
+
+void pulses_reset(struct pulses *pulses, uint64_t next_frame)
+{
+    pulses->first_frame = next_frame;
+    for (uint32_t s = 0; s < pulses->n_stages; s++) {
+        struct stage *stage = &pulses->stages[s];
+        stage->filled = 0;
+        stage->n_blocks = 0;
+        bands_reset(stage->bands);
+        if (stage->decimator)
+            decimator_reset(stage->decimator);
+    }
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        trigger_reset(pulses->ears[e].trigger);
+        trains_reset(pulses->ears[e].trains);
+    }
+}
+
+/* An ear at work on a block: what its trigger and its trains give lands here. */
+struct hearing {
+    struct pulses *pulses;
+    struct ear *ear;
+};
+
+static void take_train(void *context, const struct train *train)
+{
+    const struct hearing *hearing = context;
+    const struct ear *ear = hearing->ear;
+    double half = ear->call_class->train.pulse_s * hearing->pulses->rate_hz / 2;
+    double first = (double)hearing->pulses->first_frame;
+    struct found_call found = {
+        .class_index = ear->class_index,
+        .start_frame = first + fmax(0, train->start_frame - half),
+        .end_frame = first + train->end_frame + half,
+        .known_frame = hearing->pulses->known_frame,
+        .low_hz = ear->call_class->low_hz,
+        .high_hz = ear->call_class->high_hz,
+        .n_pulses = train->n_pulses,
+        .interval_frames = train->interval_frames,
+        .snr_db = train->snr_db,
+        .mean_square_pa2 =
+            (train->end_energy - train->start_energy) / fmax(1, train->end_frame - train->start_frame),
+    };
+    hearing->pulses->sink->take(hearing->pulses->sink->context, &found);
+}
+
+static void take_pulse(void *context, const struct pulse *pulse)
+{
+    struct hearing *hearing = context;
+    struct train_sink sink = {take_train, hearing};
+    trains_push(hearing->ear->trains, pulse, &sink, hearing->ear->rejections);
+}
+
+static void search_block(struct pulses *pulses, uint32_t index)
+{
+    struct stage *stage = &pulses->stages[index];
+    bands_push(stage->bands, stage->block);
+    stage->n_blocks++;
+    pulses->known_frame =
+        pulses->first_frame + stage->n_blocks * stage->block_frames * stage->factor - (stage->factor == 1);
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        struct ear *ear = &pulses->ears[e];
+        if (ear->stage != index)
+            continue;
+        struct hearing hearing = {pulses, ear};
+        struct pulse_sink pulse_sink = {take_pulse, &hearing};
+        struct train_sink train_sink = {take_train, &hearing};
+        trigger_push(ear->trigger, &pulse_sink, ear->rejections);
+        trains_advance(ear->trains, trigger_get_known(ear->trigger), &train_sink, ear->rejections);
+    }
+}
+
+static void fill(struct pulses *pulses, uint32_t index, const float *samples, size_t n)
+{
+    struct stage *stage = &pulses->stages[index];
+    while (n > 0) {
+        size_t room = stage->block_frames - stage->filled, part = n < room ? n : room;
+        memcpy(stage->block + stage->filled, samples, part * sizeof *samples);
+        stage->filled += (uint32_t)part;
+        samples += part;
+        n -= part;
+        if (stage->filled == stage->block_frames) {
+            stage->filled = 0;
+            search_block(pulses, index);
+        }
+    }
+}
+
+void pulses_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct found_sink *sink)
+{
+    pulses->sink = sink;
+    for (uint32_t done = 0; done < n; done += PIECE_FRAMES) {
+        uint32_t part = n - done < PIECE_FRAMES ? n - done : PIECE_FRAMES;
+        for (uint32_t s = 0; s < pulses->n_stages; s++) {
+            struct stage *stage = &pulses->stages[s];
+            if (!stage->decimator)
+                fill(pulses, s, pascals + done, part);
+            else
+                fill(pulses, s, pulses->decimated,
+                     decimator_push(stage->decimator, pascals + done, part, pulses->decimated));
+        }
+    }
+}
+
+void pulses_finish(struct pulses *pulses, const struct found_sink *sink)
+{
+    pulses->sink = sink;
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        struct ear *ear = &pulses->ears[e];
+        const struct stage *stage = &pulses->stages[ear->stage];
+        pulses->known_frame =
+            pulses->first_frame + (stage->n_blocks * stage->block_frames + stage->filled) * stage->factor;
+        struct hearing hearing = {pulses, ear};
+        struct pulse_sink pulse_sink = {take_pulse, &hearing};
+        struct train_sink train_sink = {take_train, &hearing};
+        trigger_finish(ear->trigger, &pulse_sink);
+        trains_finish(ear->trains, &train_sink, ear->rejections);
+    }
+}
+
+void pulses_hide(struct pulses *pulses, double start_frame, double end_frame, double low_hz, double high_hz)
+{
+    double first = (double)pulses->first_frame;
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        struct ear *ear = &pulses->ears[e];
+        if (ear->call_class->low_hz < high_hz && ear->call_class->high_hz > low_hz)
+            trains_hide(ear->trains, start_frame - first, end_frame - first, ear->rejections);
+    }
+}
+
+bool pulses_is_hearable(const struct pulses *pulses, uint32_t class_index)
+{
+    for (uint32_t e = 0; e < pulses->n_ears; e++)
+        if (pulses->ears[e].class_index == class_index)
+            return true;
+    return false;
+}
+
+double pulses_get_background(const struct pulses *pulses, uint32_t class_index)
+{
+    for (uint32_t e = 0; e < pulses->n_ears; e++)
+        if (pulses->ears[e].class_index == class_index)
+            return trigger_get_background(pulses->ears[e].trigger);
+    return 0;
+}
+
+void pulses_get_rejections(const struct pulses *pulses, uint64_t out[][REJECT_COUNT])
+{
+    for (uint32_t e = 0; e < pulses->n_ears; e++)
+        memcpy(out[pulses->ears[e].class_index], pulses->ears[e].rejections,
+               sizeof pulses->ears[e].rejections);
+}
+
+void pulses_destroy(struct pulses *pulses)
+{
+    if (!pulses)
+        return;
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        trains_destroy(pulses->ears[e].trains);
+        trigger_destroy(pulses->ears[e].trigger);
+    }
+    for (uint32_t s = 0; s < pulses->n_stages; s++) {
+        bands_destroy(pulses->stages[s].bands);
+        decimator_destroy(pulses->stages[s].decimator);
+        free(pulses->stages[s].block);
+    }
+    free(pulses);
+}
