@@ -13,7 +13,8 @@
 #include <string.h>
 
 #define PUBLISH_GAP_NS (TIME_NS_PER_S / 4)
-#define STALE_S 1.0 /* a live stream without sound for longer is not heard */
+#define BEAT_NS (10 * TIME_NS_PER_S) /* a sign of life, so that an outage is known to begin within it */
+#define STALE_S 1.0                  /* a live stream without sound for longer is not heard */
 
 struct watcher {
     struct watcher_setup setup;
@@ -24,7 +25,7 @@ struct watcher {
     uint32_t map_changes[SITE_MAX_STREAMS];
     bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind;
     bool changed; /* something that people should see at once */
-    int64_t published_ns;
+    int64_t published_ns, beat_ns;
     pthread_t thread;
     bool running;
     atomic_bool ended;
@@ -237,6 +238,11 @@ static void publish(struct watcher *watcher, int64_t watch_ns)
     }
     if (left_behind)
         hearing_add_fault(hearing, "A LIVE STREAM LAGS: its events come late");
+    if (watcher->setup.board && watch_ns - watcher->beat_ns >= BEAT_NS) {
+        watcher->beat_ns = watch_ns;
+        keep_status(watcher,
+                    recorder_health(watcher->setup.recorder, watch_ns, 0, true, "the watch is kept"));
+    }
     if (watcher->setup.board) {
         watch_get_view(watcher->setup.watch, watcher->view);
         keep_status(watcher, board_publish(watcher->setup.board, watcher->view, hearing));
