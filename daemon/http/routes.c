@@ -156,6 +156,8 @@ const struct route http_routes[] = {
     {"GET", "/ladder.js", answer_own_name},
     {"GET", "/strips.js", answer_own_name},
     {"GET", "/observer.js", answer_own_name},
+    {"GET", "/contacts.js", answer_own_name},
+    {"GET", "/entry.js", answer_own_name},
     {"GET", "/crew.js", answer_own_name},
     {"GET", "/icon.svg", answer_own_name},
     {"GET", "/api/state", answer_state},

@@ -224,8 +224,7 @@ static bool show_grave(struct server *server, const char *word)
 /* Markup in every text that a person can enter; none of it may do anything. */
 static void make_hostile(struct server *server)
 {
-    static const char markup[] =
-        "<img src=x onerror=\"document.title='owned'\"><script>document.title='owned'</script>";
+    static const char markup[] = "<img src=x onerror='window.owned=1'><script>window.owned=1</script>";
     server->hostile = true;
     add_person(server, markup, "visual", "");
     snprintf(server->watch.phase_reason, FLOW_TEXT_SIZE, "%s", markup);

@@ -1,0 +1,129 @@
+// The crew's page: one instruction, why, since when, earliest restart and what it needs, and a way to acknowledge.
+// A fault is shown beside the instruction and never in its place; only 'carry on' and 'may start' are withdrawn.
+import {
+  $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
+  remember, remembered, setShape, setText, span, startPalette, startSound, utc, watchNow,
+} from "/page.js";
+
+const station = new URLSearchParams(location.search).get("station") || "crew";
+const AGAIN_S = 20; // sounds again within 30 s until acknowledged (IMO MSC.302(87) 7.3.5)
+const alertSound = new Alarm(AGAIN_S);
+const faultSound = new Alarm(AGAIN_S);
+let permit = null;
+let sending = ""; // the advice whose acknowledgement is on its way
+let problem = "";
+
+function tags(advice) {
+  const said = [];
+  if (advice && !advice.confirmed) said.push("not yet confirmed");
+  if (advice && !advice.recorded) said.push("not yet recorded");
+  keyed($("tags"), said, (text) => text, (text) => el("span", { class: "tag", text }), () => {});
+}
+
+function showFaults(found, advice) {
+  keyed($("faults"), found, (fault) => fault.code, () => el("div", { class: "fault" }, el("strong"), el("span")), (node, fault) => {
+    const stays = advice && fault.grave ? remains(advice.advice) : "";
+    setText(node.firstChild, fault.title + "." + (stays ? " " + stays + "." : ""));
+    setText(node.lastChild, fault.text);
+  });
+}
+
+function showMessage(advice, withdrawn, waiting) {
+  const words = advice && !withdrawn ? adviceWords(advice.advice) : adviceWords("");
+  const box = $("instruction");
+  box.dataset.level = words.level;
+  box.dataset.words = words.words.length > 8 ? "long" : "short";
+  box.classList.toggle("unanswered", Boolean(advice && !withdrawn && words.alert && !advice.acknowledged));
+  setShape($("shape"), words.shape);
+  setText($("marker"), words.marker);
+  setText($("words"), words.words + ".");
+  let plain = advice ? plainWords(advice.advice, permit && permit.permit.activity) : "";
+  if (withdrawn) plain = "‘" + adviceWords(advice.advice).words[0] + adviceWords(advice.advice).words.slice(1).toLowerCase() + "’ is withdrawn. Ask the observer by voice.";
+  else if (waiting) plain = "The page waits for the daemon.";
+  else if (!advice) plain = "The observer has given no instruction.";
+  setText($("plain"), plain);
+  tags(withdrawn ? null : advice);
+  document.title = words.words + " – " + station;
+}
+
+function showFacts(advice, found) {
+  const why = found.filter((fault) => fault.grave).map((fault) => fault.title.toLowerCase()).join(", ");
+  setText($("reason"), advice ? advice.reason || "–" : why ? why[0].toUpperCase() + why.slice(1).replace(/ utc/g, " UTC") : "–");
+  setText($("clause"), advice ? [advice.clause, advice.job].filter(Boolean).join(" · ") : "");
+  setText($("since"), advice ? utc(advice.since_s) + " UTC" : "–");
+  setText($("since_more"), advice ? local(advice.since_s) + " local · " + span(watchNow() - advice.since_s) + " ago" : "");
+  const until = advice && advice.until_s !== null ? advice.until_s : null;
+  const starts = advice && ["do not start", "may start"].includes(advice.advice);
+  setText($("until_title"), starts ? "Earliest start" : "Earliest restart");
+  const left = until === null ? 0 : until - watchNow();
+  setText($("until"), until === null ? (!advice ? "–" : advice.advice === "may start" ? "now" : "when allowed") : utc(until) + " UTC");
+  const wait = until === null ? "" : local(until) + " local · " + (left > 0 ? "in " + span(left) : "now, if all else is met") + ". ";
+  setText($("requires"), wait + (advice && advice.requires ? "Requires: " + advice.requires : ""));
+}
+
+function showAnswer(advice, withdrawn) {
+  const words = advice ? adviceWords(advice.advice) : null;
+  const asks = Boolean(words && words.alert && !withdrawn);
+  const button = $("acknowledge");
+  button.hidden = !asks || advice.acknowledged;
+  button.disabled = asks && sending === advice.id;
+  let text = problem;
+  if (asks && advice.acknowledged) text = "Acknowledged by " + (advice.acknowledged_by || "?") + (advice.answer ? " (" + advice.answer + ")" : "") + ".";
+  setText($("answered"), text);
+}
+
+function sounds(advice, withdrawn, found) {
+  const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
+  const wants = words && words.alert && !advice.acknowledged;
+  alertSound.set(wants ? advice.id + advice.advice : "", words ? (words.level === "stop" ? "stop" : words.level === "hold" ? "hold" : "go") : "go");
+  faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
+}
+
+function draw() {
+  const now = clock();
+  setText($("utc"), now.utc);
+  setText($("local"), now.local);
+  const state = link.state;
+  const advice = state ? adviceFor(state, station, "crew") : null;
+  const found = faults();
+  const withdrawn = Boolean(advice && adviceWords(advice.advice).withdrawable && found.some((fault) => fault.grave));
+  setText($("job"), state && state.phase.job ? "job " + state.phase.job : "");
+  showFaults(found, advice);
+  showMessage(advice, withdrawn, !state);
+  showFacts(withdrawn ? null : advice, found);
+  showAnswer(advice, withdrawn);
+  sounds(advice, withdrawn, found);
+  const names = state ? state.people.filter((person) => person.watch === "crew") : [];
+  keyed($("crew_names"), names, (person) => person.name, (person) => el("option", { value: person.name }), () => {});
+}
+
+async function acknowledge() {
+  const advice = link.state && adviceFor(link.state, station, "crew");
+  const person = $("person").value.trim();
+  if (!advice) return;
+  if (!person) {
+    problem = "Enter your name, then acknowledge.";
+    $("person").focus();
+    draw();
+    return;
+  }
+  remember("crew." + station, person);
+  sending = advice.id;
+  draw();
+  const answer = await post({ kind: "acknowledgement", person, station, advice: advice.id, answer: "seen" });
+  if (answer.error) sending = ""; // else the button waits for the state that says so
+  problem = answer.error ? "Not acknowledged: " + answer.error : "";
+  draw();
+}
+
+startPalette();
+startSound($("sound"));
+setText($("station"), station);
+$("person").value = remembered("crew." + station);
+$("acknowledge").addEventListener("click", acknowledge);
+$("person").addEventListener("keydown", (event) => event.key === "Enter" && acknowledge());
+loadPermit().then((loaded) => {
+  permit = loaded;
+  draw();
+});
+connect(draw);

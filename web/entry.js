@@ -1,0 +1,96 @@
+// What people enter: one small form a kind of note. Field names are those of POST /api/note.
+import { $, el, post, remember, setText } from "/page.js";
+
+const SOURCE_STATES = ["off", "soft start", "full power", "hold", "reduced", "stopped", "vibro", "drilling", "line turn", "test"];
+const select = (name, label, options) => ({ name, label, options });
+const number = (name, label, more = {}) => ({ name, label, type: "number", step: "any", min: 0, ...more });
+
+const KINDS = {
+  Sighting: {
+    kind: "sighting", person: true,
+    fields: (permit) => [
+      select("group", "Group", permit ? permit.groups : ["unknown"]), number("distance_m", "Distance, m", { max: 100000 }),
+      number("number", "Animals", { min: 1, step: 1 }), number("bearing_deg", "Bearing, °", { max: 360 }),
+      number("contact", "Contact no.", { min: 1, step: 1 }), { name: "calf", label: "Calf", type: "checkbox" },
+      { name: "leaving", label: "Leaving the zone", type: "checkbox" },
+    ],
+  },
+  Source: { kind: "source state", fields: () => [select("source_state", "The source is now", SOURCE_STATES)] },
+  Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "Open or close", ["open", "close"])] },
+  Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 })] },
+  Remark: { kind: "remark", fields: () => [{ name: "text", label: "Remark", required: true, maxlength: 200, wide: true }] },
+  Mark: { kind: "mark", fields: () => [{ name: "text", label: "What was it?", required: true, maxlength: 200, wide: true }] },
+};
+
+/** Who enters: the name at the top; asks for it when a note needs one. */
+export function person(needed) {
+  const name = $("person").value.trim();
+  if (!name && needed) {
+    $("person").focus();
+    say("Enter your name at the top first.", true);
+    return null;
+  }
+  if (name) remember("person", name);
+  return name;
+}
+
+export function say(text, wrong = false) {
+  const place = $("entered");
+  setText(place, text);
+  place.classList.toggle("wrong", wrong);
+}
+
+/** Sends a note and says what became of it; returns whether it was taken. */
+export async function send(note, form) {
+  for (const input of form ? form.elements : []) input.removeAttribute("aria-invalid");
+  const answer = await post(note);
+  if (answer.id) {
+    say("Entered: " + note.kind + " (" + answer.id + ").");
+    return true;
+  }
+  const input = form && answer.field && form.elements[answer.field];
+  if (input) {
+    input.setAttribute("aria-invalid", "true");
+    input.focus();
+  }
+  say("Not entered: " + answer.error + (answer.field ? " – " + answer.field : "") + (answer.allowed ? " (allowed: " + answer.allowed + ")" : "") + ".", true);
+  return false;
+}
+
+export function field(spec) {
+  const { label, options, wide, ...attributes } = spec;
+  const input = options ? el("select", { name: spec.name }, ...options.map((word) => el("option", { text: word, value: word }))) : el("input", { autocomplete: "off", ...attributes });
+  return el("label", { class: (wide ? "wide " : "") + (spec.type === "checkbox" ? "tick" : "") }, el("span", { text: label }), input);
+}
+
+/** The filled fields of a form, as numbers, flags and texts. */
+export function values(form) {
+  const note = {};
+  for (const input of form.elements) {
+    if (!input.name || (input.type !== "checkbox" && input.value.trim() === "") || (input.type === "checkbox" && !input.checked)) continue;
+    note[input.name] = input.type === "checkbox" ? true : input.type === "number" ? Number(input.value) : input.value.trim();
+  }
+  return note;
+}
+
+let chosen = "Sighting";
+export function chooseEntry(name, permit, focus) {
+  chosen = name;
+  for (const button of $("kinds").children) button.setAttribute("aria-pressed", String(button.textContent === name));
+  const form = $("entry");
+  form.replaceChildren(...KINDS[name].fields(permit).map(field), el("button", { class: "main", text: "Enter " + name.toLowerCase() }));
+  if (focus) form.querySelector("input, select").focus();
+}
+
+export function startEntry(permit) {
+  if (!$("kinds").firstChild)
+    for (const name of Object.keys(KINDS)) $("kinds").append(el("button", { type: "button", class: "plain", text: name, onclick: () => chooseEntry(name, permit(), true) }));
+  $("entry").addEventListener("submit", async (event) => {
+    event.preventDefault();
+    const kind = KINDS[chosen], name = person(kind.person);
+    if (name === null) return;
+    const note = { kind: kind.kind, ...(name ? { person: name } : {}), ...values(event.target) };
+    if (await send(note, event.target)) chooseEntry(chosen, permit(), false);
+  });
+  chooseEntry(chosen, permit(), false);
+}

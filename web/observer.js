@@ -1,0 +1,184 @@
+// The observer's page: distance first, what was heard, what is allowed, what the source does, how well we hear.
+import {
+  $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, plainWords, remains, remembered,
+  remember, setShape, setText, span, startPalette, startSound, utc, watchNow,
+} from "/page.js";
+import { drawContacts, showContact } from "/contacts.js";
+import { chooseEntry, person, send, startEntry } from "/entry.js";
+import { drawLadder } from "/ladder.js";
+import { startStrips } from "/strips.js";
+
+const alertSound = new Alarm(20);
+const verdictSound = new Alarm(10);
+const faultSound = new Alarm(20);
+let site = null;
+
+function drawFaults(found, advice) {
+  keyed($("faults"), found, (fault) => fault.code, () => el("div", { class: "fault" }, el("strong"), el("span")), (node, fault) => {
+    const stays = advice && fault.grave ? remains(advice.advice) : "";
+    setText(node.firstChild, fault.title + "." + (stays ? " " + stays + "." : ""));
+    setText(node.lastChild, fault.text);
+  });
+}
+
+function drawAdvice(advice, withdrawn) {
+  const words = advice && !withdrawn ? adviceWords(advice.advice) : adviceWords("");
+  $("instruction").dataset.level = words.level;
+  setShape($("shape"), words.shape);
+  setText($("marker"), words.marker);
+  setText($("words"), words.words + ".");
+  const why = advice ? advice.reason + (advice.clause ? " (" + advice.clause + ")" : "") : "Nothing is asked of the crew.";
+  setText($("reason"), withdrawn ? "‘" + advice.advice + "’ is withdrawn while this lasts." : (advice ? plainWords(advice.advice, site && site.permit.activity) + " " : "") + why);
+  const tags = [];
+  if (advice && !advice.confirmed) tags.push("not yet confirmed");
+  if (advice && !advice.recorded) tags.push("not yet recorded");
+  keyed($("tags"), withdrawn ? [] : tags, (text) => text, (text) => el("span", { class: "tag", text }), () => {});
+  setText($("since"), advice ? utc(advice.since_s) + " UTC, " + span(watchNow() - advice.since_s) + " ago" : "–");
+  const until = advice ? advice.until_s : null;
+  setText($("until"), until === null ? "–" : utc(until) + " UTC" + (until > watchNow() ? ", in " + span(until - watchNow()) : ""));
+  setText($("requires"), (advice && advice.requires) || "–");
+  document.title = (advice && !withdrawn ? words.words + " – " : "") + "Observer";
+}
+
+function drawCrew(state) {
+  const crew = adviceFor(state, "crew");
+  const countdown = state.contacts.filter((c) => c.state === "open" && c.countdown_ends_s !== null && c.countdown_ends_s > watchNow());
+  let text = crew ? crew.advice + ": " + (crew.acknowledged ? "acknowledged by " + crew.acknowledged_by + " (" + crew.answer + ")" : adviceWords(crew.advice).alert ? "NOT ACKNOWLEDGED" : "shown") : "nothing shown";
+  if (countdown.length) text += "; contact " + countdown[0].contact + " goes to the crew in " + span(countdown[0].countdown_ends_s - watchNow());
+  setText($("crew"), text);
+}
+
+function drawPhase(state) {
+  const phase = state.phase;
+  setText($("phase"), phase.phase);
+  setText($("phase_since"), "since " + utc(phase.since_s) + " UTC, for " + span(watchNow() - phase.since_s));
+  setText($("phase_reason"), phase.reason + (phase.clause ? " (" + phase.clause + ")" : ""));
+  setText($("source"), "Source: said " + phase.source_said + ", heard " + (phase.source_heard ? "working" : "silent") + (phase.released_by ? ". Released by " + phase.released_by : ""));
+  $("release").hidden = !phase.release_possible;
+  keyed($("timers"), state.timers, (timer) => timer.name, () => el("li", { class: "timer" }, el("p", {}, el("b"), el("span")), el("progress"), el("p", { class: "held" })), (node, timer) => {
+    const done = timer.elapsed_s >= timer.needed_s, bar = node.querySelector("progress");
+    setText(node.querySelector("b"), timer.name);
+    setText(node.querySelector("span"), span(Math.min(timer.elapsed_s, timer.needed_s)) + " of " + span(timer.needed_s) + (done ? ", complete" : timer.running ? ", running" : ", held"));
+    bar.max = timer.needed_s || 1;
+    bar.value = Math.min(timer.elapsed_s, bar.max);
+    bar.setAttribute("aria-label", timer.name);
+    node.classList.toggle("is_held", !timer.running && !done);
+    setText(node.querySelector(".held"), !timer.running && !done ? "Held: " + timer.held_by : "");
+  });
+}
+
+function drawPeople(state) {
+  keyed($("people"), state.people, (p) => p.name + "|" + p.watch + "|" + p.station, (p) => {
+    const off = el("button", { type: "button", class: "plain", text: "Sign off", "aria-label": "Sign off " + p.name });
+    off.addEventListener("click", () => send({ kind: "sign-off", person: p.name, watch: p.watch, ...(p.station ? { station: p.station } : {}) }));
+    return el("li", { class: "split" }, el("span"), off);
+  }, (node, p) => setText(node.firstChild, `${p.name}, ${p.watch}${p.station ? " (" + p.station + ")" : ""}, ${span(watchNow() - p.since_s)}`));
+  keyed($("names"), state.people, (p) => p.name, (p) => el("option", { value: p.name }), () => {});
+}
+
+function cells(row, texts) {
+  while (row.children.length < texts.length) row.append(el("td"));
+  texts.forEach((text, i) => setText(row.children[i], text));
+}
+const db = (value, relative) => (value === null ? "–" : value.toFixed(1) + (relative ? " rel." : ""));
+
+function drawSource(state) {
+  setText($("impulse_count"), state.n_impulses + " of ours in this job");
+  const blows = state.impulses.length ? state.impulses.slice(0, 5) : [null];
+  keyed($("impulses").tBodies[0], blows, (impulse) => impulse && impulse.id, () => el("tr"), (row, impulse) =>
+    cells(row, !impulse ? ["None yet", "", "", "", ""] : [utc(impulse.time_s), db(impulse.sel_db, impulse.relative), db(impulse.peak_db, impulse.relative) + (impulse.clipped ? " clipped" : ""), (impulse.t90_s * 1000).toFixed(0) + " ms", impulse.whose]));
+  keyed($("levels").tBodies[0], state.levels.slice(0, 16), (level) => level.stream + "." + level.channel, () => el("tr"), (row, level) => {
+    const high = level.decades.slice(3).map((d) => d.spl_db).filter((v) => v !== null);
+    const above = high.length ? 10 * Math.log10(high.reduce((sum, v) => sum + 10 ** (v / 10), 0)) : null;
+    const decade = (i) => (level.decades[i] ? db(level.decades[i].spl_db, level.relative) : "–");
+    cells(row, [level.stream + "." + level.channel, db(level.spl_db, level.relative), db(level.peak_db, level.relative), decade(0), decade(1), decade(2), db(above, level.relative)]);
+  });
+}
+
+function drawHearing(state) {
+  keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
+    node.classList.toggle("bad", !stream.hearing);
+    setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));
+    setText(node.lastChild, ` ${stream.channels} channel${stream.channels === 1 ? "" : "s"}, ${stream.rate_hz / 1000} kHz, ${stream.input}: ${stream.health}. Unheard so far: ${span(stream.unheard_s)}.`);
+  });
+  const record = state.recording;
+  setText($("recording"), record.recording ? "Recording: entry " + record.entry + ", complete to " + utc(record.committed_s) + " UTC." : "NOT RECORDING: " + record.text);
+  const gaps = state.unheard.length ? state.unheard.slice(0, 5) : [null];
+  keyed($("unheard"), gaps, (gap) => gap && [gap.stream, gap.channel, gap.start_s, gap.cause].join(), () => el("li"), (node, gap) =>
+    setText(node, !gap ? "None." : `${utc(gap.start_s)} UTC, ${(gap.end_s - gap.start_s).toFixed(1)} s: ${gap.cause}, ${gap.channel ? "channel " + gap.stream + "." + gap.channel : "all of stream " + gap.stream}`));
+}
+
+function drawPermit() {
+  const permit = site.permit, doubtful = permit.values.filter((value) => value.unverified);
+  setText($("site"), site.site || "Hushwatch");
+  setText($("permit_name"), permit.title + (permit.year ? " (" + permit.year + ")" : ""));
+  $("permit_name").classList.toggle("demonstration", permit.demonstration);
+  setText($("permit_values"), doubtful.length ? `${doubtful.length} of ${permit.values.length} values are unverified: check each against the document before you rely on it.` : "All values were read from the document.");
+  keyed($("values").tBodies[0], permit.values, (value) => value.key, () => el("tr"), (row, value) => cells(row, [value.key, value.value, value.mark + (value.unverified ? ": check" : ""), value.source]));
+  $("sign").elements.station.replaceChildren(...site.stations.map((name) => el("option", { text: name })));
+}
+
+function sounds(state, advice, withdrawn, found) {
+  const asked = state.contacts.filter((contact) => contact.state === "open" && contact.countdown_ends_s !== null);
+  verdictSound.set(asked.map((contact) => contact.contact).join(), "hold");
+  const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
+  const crew = adviceFor(state, "crew");
+  const wants = words && words.alert && !(crew && crew.acknowledged);
+  alertSound.set(wants ? advice.id : "", words && words.level === "stop" ? "stop" : words && words.level === "hold" ? "hold" : "go");
+  faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
+}
+
+function draw() {
+  const now = clock(), state = link.state, found = faults();
+  setText($("utc"), now.utc);
+  setText($("local"), now.local);
+  const advice = state ? adviceFor(state, "observer", "crew") : null;
+  const withdrawn = Boolean(advice && adviceWords(advice.advice).withdrawable && found.some((fault) => fault.grave));
+  drawFaults(found, advice);
+  if (!state) return;
+  setText($("job"), state.phase.job ? "job " + state.phase.job : "");
+  drawAdvice(advice, withdrawn);
+  drawCrew(state);
+  drawLadder($("ladder"), site ? site.permit.zones : [], drawContacts(), showContact);
+  drawPhase(state);
+  drawPeople(state);
+  drawSource(state);
+  drawHearing(state);
+  sounds(state, advice, withdrawn, found);
+}
+
+function startForms() {
+  $("person").value = remembered("person");
+  $("person").addEventListener("change", () => remember("person", $("person").value.trim()));
+  $("release").addEventListener("click", () => {
+    const who = person(true);
+    if (who !== null) send({ kind: "release", person: who });
+  });
+  const sign = $("sign");
+  sign.elements.watch.addEventListener("change", () => ($("sign_station").hidden = sign.elements.watch.value !== "crew"));
+  sign.addEventListener("submit", (event) => {
+    event.preventDefault();
+    const who = person(true), watch = sign.elements.watch.value;
+    if (who !== null) send({ kind: "sign-on", person: who, watch, ...(watch === "crew" ? { station: sign.elements.station.value } : {}) }, sign);
+  });
+  startEntry(() => site);
+  document.addEventListener("keydown", (event) => {
+    if (event.target.closest("input, select, textarea") || event.ctrlKey || event.altKey || event.metaKey || remembered("keys", "on") !== "on") return;
+    if (event.key === "s") {
+      event.preventDefault();
+      chooseEntry("Sighting", site, true);
+    } else if (event.key === "c") showContact(-1);
+  });
+}
+
+startPalette();
+startSound($("sound"));
+startForms();
+startStrips();
+loadPermit().then((loaded) => {
+  site = loaded;
+  drawPermit();
+  chooseEntry("Sighting", site, false);
+  draw();
+});
+connect(draw);
