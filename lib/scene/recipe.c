@@ -146,10 +146,11 @@ static void pulse(struct sound *out, enum sound_shape shape, const struct sound_
         out->parts[k] = parts[k];
 }
 
-/* Two lobes at 45 and 105 kHz (Au 1993, "The sonar of dolphins"), stretched 1 to 3 times as off the axis. */
+/* Two lobes at 45 and 105 kHz (Au 1993, "The sonar of dolphins"), stretched up to 1.7 times as off the axis.
+ */
 static void make_delphinid_click(struct random *random, struct sound *out)
 {
-    double stretch = random_between(random, 1.0, 3.0);
+    double stretch = random_between(random, 1.0, 1.7);
     struct sound_part parts[] = {
         {.amplitude = 0.7, .frequency_hz = 45000 / stretch, .width_s = 9e-6 * stretch},
         {.amplitude = 1.0 / stretch, .frequency_hz = 105000 / stretch, .width_s = 6e-6 * stretch}};
