@@ -63,19 +63,17 @@ static bool riff_is_cut(FILE *file, uint64_t size)
 static bool ogg_is_cut(FILE *file, uint64_t size)
 {
     enum { PAGE = 65307, END_OF_STREAM = 0x04 };
-    unsigned char *tail = malloc(PAGE);
-    bool cut = true, ogg = false;
-    if (tail && fseek(file, 0, SEEK_SET) == 0 && fread(tail, 4, 1, file) == 1)
-        ogg = memcmp(tail, "OggS", 4) == 0;
-    long from = size > PAGE ? (long)(size - PAGE) : 0;
-    if (ogg && fseek(file, from, SEEK_SET) == 0) {
+    unsigned char tail[PAGE];
+    if (fseek(file, 0, SEEK_SET) != 0 || fread(tail, 4, 1, file) != 1 || memcmp(tail, "OggS", 4) != 0)
+        return false;
+    bool cut = true;
+    if (fseek(file, size > PAGE ? (long)(size - PAGE) : 0, SEEK_SET) == 0) {
         size_t n = fread(tail, 1, PAGE, file);
         for (size_t i = 0; i + 5 < n; i++)
             if (memcmp(tail + i, "OggS", 4) == 0)
                 cut = (tail[i + 5] & END_OF_STREAM) == 0;
     }
-    free(tail);
-    return ogg && cut;
+    return cut;
 }
 
 /* The last frame that the header promises can be read: what a cut FLAC file cannot do. */
