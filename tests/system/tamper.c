@@ -5,8 +5,8 @@
 #include "base/random.h"
 #include "base/time.h"
 #include "ledger/ledger.h"
+#include "record/entry.h"
 #include "record/marks.h"
-#include "record/record.h"
 #include <stdlib.h>
 #include <sys/wait.h>
 #include <unistd.h>
@@ -30,11 +30,14 @@ static int shell(const char *format, ...)
     return WEXITSTATUS(result);
 }
 
-static void add_line(void *context, const struct record_line *line)
+#define ZERO_NS (INT64_C(1772366400) * TIME_NS_PER_S) /* 2026-03-01T12:00:00Z */
+
+static void add_line(struct ledger *ledger, int64_t watch_ns, const char *kind, const char *body)
 {
-    char problem[LEDGER_PROBLEM_SIZE];
-    struct ledger_line add = {.utc = line->utc, .kind = line->kind, .body = line->body};
-    assert_int_equal(ledger_append(context, &add, 1, problem), STATUS_OK);
+    char utc[TIME_UTC_SIZE], problem[LEDGER_PROBLEM_SIZE];
+    time_format_utc(ZERO_NS + watch_ns, utc);
+    struct ledger_line line = {.utc = utc, .kind = kind, .body = body};
+    assert_int_equal(ledger_append(ledger, &line, 1, problem), STATUS_OK);
 }
 
 static void make_outcome(struct outcome *outcome, unsigned i)
@@ -65,22 +68,21 @@ static void make_outcome(struct outcome *outcome, unsigned i)
 static void make_ledger(void)
 {
     struct ledger *ledger;
-    struct record *record;
+    struct text body = {0};
+    struct outcome outcome;
     char path[600], problem[LEDGER_PROBLEM_SIZE];
-    struct run_facts facts = {.site = "tamper test"};
-    struct record_setup setup = {1, 1, INT64_C(1772366400) * TIME_NS_PER_S, &facts};
+    const struct run_mark no_outage = {0, 0};
     snprintf(path, sizeof path, "%s/good.ledger", folder);
     assert_int_equal(ledger_open(path, LEDGER_CREATE, &ledger, problem), STATUS_OK);
-    assert_int_equal(record_create(&setup, &record), STATUS_OK);
-    struct record_sink sink = {add_line, ledger};
-    struct outcome outcome = {.kind = OUTCOME_EVENT};
-    outcome.as.event = (struct event){.kind = EVENT_RUN, .run = 1, .counter = 1};
-    assert_int_equal(record_push(record, &outcome, &sink), STATUS_OK);
+    assert_int_equal(
+        entry_body_run(1, &no_outage, ZERO_NS, &(struct run_facts){.site = "tamper test"}, &body), STATUS_OK);
+    add_line(ledger, 0, "run", body.data);
     for (unsigned i = 1; i < N_ENTRIES; i++) {
         make_outcome(&outcome, i);
-        assert_int_equal(record_push(record, &outcome, &sink), STATUS_OK);
+        assert_int_equal(entry_body(&outcome, ZERO_NS, &body), STATUS_OK);
+        add_line(ledger, outcome.watch_ns, flow_outcome_kind_text(&outcome), body.data);
     }
-    record_destroy(record);
+    text_destroy(&body);
     ledger_close(ledger);
 }
 
