@@ -6,7 +6,7 @@
 #define HOLD_S 0.25 /* of sound: the most that a decision waits for */
 #define HOLD_MARKS                                                                                           \
     16 /* so many agree to the frame: each is late by less than half a frame half of the time */
-#define USUAL_BINS 16
+#define LATEST_BINS 16
 #define SLOPE_SPAN_S 1.0  /* below it the nominal rate is better than a measured one */
 #define MAX_SLOPE 500e-6  /* a sound device's crystal is within a tenth of it; common practice, no source */
 #define LEAST_STEP_S 1e-3 /* a step without the driver's flag is a loss from here up */
@@ -50,36 +50,48 @@ static double step_limit_s(const struct account *a)
     return LEAST_STEP_S + STEP_TO_NOISE * a->noise_s;
 }
 
-/* Positive where b lies below the straight line from a to c. */
-static double below(struct account_point a, struct account_point b, struct account_point c)
+static void insert_sorted(double *sorted, uint32_t n, double value)
 {
-    return (b.x_s - a.x_s) * (c.y_s - a.y_s) - (b.y_s - a.y_s) * (c.x_s - a.x_s);
+    for (; n > 0 && sorted[n - 1] > value; n--)
+        sorted[n] = sorted[n - 1];
+    sorted[n] = value;
 }
 
-/* The lower line: that edge of the lower convex hull which spans the mean of x. */
+static double median(const double *sorted, uint32_t n)
+{
+    return n % 2 ? sorted[n / 2] : 0.5 * (sorted[n / 2 - 1] + sorted[n / 2]);
+}
+
+/* Siegel's repeated median of the slopes between the points. */
+static double repeated_median_slope(const struct account *a)
+{
+    double outer[ACCOUNT_BINS], inner[ACCOUNT_BINS];
+    for (uint32_t i = 0; i < a->n_bins; i++) {
+        uint32_t n = 0;
+        for (uint32_t j = 0; j < a->n_bins; j++)
+            if (j != i)
+                insert_sorted(inner, n++,
+                              (a->bins[j].y_s - a->bins[i].y_s) / (a->bins[j].x_s - a->bins[i].x_s));
+        insert_sorted(outer, i, median(inner, n));
+    }
+    return median(outer, a->n_bins);
+}
+
+/* The line through the bins' points, at the height of the latest ones. */
 static void fit(struct account *a)
 {
-    struct account_point hull[ACCOUNT_BINS];
-    uint32_t n = 0;
-    double mean_s = 0;
-    for (uint32_t i = 0; i < a->n_bins; i++) {
-        while (n >= 2 && below(hull[n - 2], hull[n - 1], a->bins[i]) <= 0)
-            n--;
-        hull[n++] = a->bins[i];
-        mean_s += a->bins[i].x_s / a->n_bins;
+    double heights[LATEST_BINS];
+    uint32_t n = a->n_bins < LATEST_BINS ? a->n_bins : LATEST_BINS;
+    a->slope = 0;
+    if (a->n_bins >= 2 && a->bins[a->n_bins - 1].x_s - a->bins[0].x_s >= SLOPE_SPAN_S)
+        a->slope = repeated_median_slope(a);
+    if (!(fabs(a->slope) <= MAX_SLOPE))
+        a->slope = 0;
+    for (uint32_t i = 0; i < n; i++) {
+        const struct account_point *p = &a->bins[a->n_bins - n + i];
+        insert_sorted(heights, i, p->y_s - a->slope * p->x_s);
     }
-    uint32_t edge = 0;
-    while (edge + 2 < n && hull[edge + 1].x_s < mean_s)
-        edge++;
-    double slope = 0;
-    if (n >= 2 && a->bins[a->n_bins - 1].x_s - a->bins[0].x_s >= SLOPE_SPAN_S)
-        slope = (hull[edge + 1].y_s - hull[edge].y_s) / (hull[edge + 1].x_s - hull[edge].x_s);
-    if (fabs(slope) > MAX_SLOPE)
-        slope = 0;
-    a->slope = slope;
-    a->offset_s = INFINITY;
-    for (uint32_t i = 0; i < a->n_bins; i++)
-        a->offset_s = fmin(a->offset_s, a->bins[i].y_s - slope * a->bins[i].x_s);
+    a->offset_s = median(heights, n);
 }
 
 static void add_point(struct account *a, struct account_point p)
@@ -104,9 +116,8 @@ static void add_point(struct account *a, struct account_point p)
     } else if (r < above_line(a, a->bins[a->n_bins - 1])) {
         a->bins[a->n_bins - 1] = p;
     }
-    r = above_line(a, p);
-    if (r < 0)
-        a->offset_s += r;
+    if (a->n_bins == 1) /* no line yet: the earliest point is the best guess */
+        a->offset_s = fmin(a->offset_s, p.y_s);
 }
 
 /* Queues a piece; pieces that follow without loss are one. */
@@ -137,29 +148,12 @@ static void accept(struct account *a, const struct ring_mark *mark, uint64_t los
     a->next_frame += lost + mark->n_frames - skip;
 }
 
-/* How far above the line the earliest point of a quarter of a second is wont to be: the median of the last
- * ones. The held marks are as few, so that they are compared with their like and not with the earliest of
- * all. */
-static double usual_least_s(const struct account *a)
-{
-    double sorted[USUAL_BINS];
-    uint32_t n = a->n_bins < USUAL_BINS ? a->n_bins : USUAL_BINS;
-    for (uint32_t i = 0; i < n; i++) {
-        double r = above_line(a, a->bins[a->n_bins - n + i]);
-        uint32_t k = i;
-        for (; k > 0 && sorted[k - 1] > r; k--)
-            sorted[k] = sorted[k - 1];
-        sorted[k] = r;
-    }
-    return n == 0 ? 0 : sorted[n / 2];
-}
-
 /* Decides what the held marks say. */
 static void decide(struct account *a)
 {
     if (a->n_held == 0)
         return;
-    double frames = round((a->held_least_s - usual_least_s(a)) * a->rate_hz / (1 + a->slope));
+    double frames = round(a->held_least_s * a->rate_hz / (1 + a->slope));
     uint64_t lost = 0;
     if (a->absent && frames < 0)
         a->skip = (uint64_t)-frames;

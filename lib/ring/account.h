@@ -2,12 +2,13 @@
  *
  * What the ring had no room for is counted by the ring. What the driver lost is told by nobody: PortAudio's
  * overrun flag has no count and may be missing. So frames are counted against the clock: the sampling times
- * of frames received lie on a straight line (the device's clock), and what is measured of them lies on it or
- * later, never earlier. The line below all recent points that leaves the least sum of distances is that
- * clock; a lasting step up from it is the number of frames lost.
+ * of frames received lie on a straight line (the device's clock), and what is measured of them lies on it or,
+ * as a rule, later. Of each quarter of a second the earliest point counts; a robust line through these is the
+ * clock; a lasting step up from it is the number of frames lost. The step is measured between the earliest
+ * points of equally many marks before and after it.
  *
- * Method: Moon, Skelly, Towsley, "Estimation and removal of clock skew from network delay measurements",
- * INFOCOM 1999 (the lower line by the convex hull), on the earliest point of each quarter of a second.
+ * Method: Siegel, "Robust regression using repeated medians", Biometrika 69 (1982), for the line, since a
+ * thread that is put to sleep between two readings can stamp far too late, and sometimes too early.
  *
  * How exact it is: to the frame, where the driver tells each block's age to the frame and a second was heard
  * before the loss; else to what the driver tells (many tell whole periods). The sound after a suspected loss
