@@ -5,8 +5,10 @@
 #include "input/input.h"
 
 #define INPUT_KINDS(KIND)                                                                                    \
+    KIND(device)                                                                                             \
     KIND(recording)                                                                                          \
-    KIND(pcm)
+    KIND(pcm)                                                                                                \
+    KIND(scene)
 
 #define INPUT_DECLARE(name) extern const struct input_kind input_##name;
 INPUT_KINDS(INPUT_DECLARE)
