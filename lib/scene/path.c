@@ -20,7 +20,7 @@ double path_range_m(const struct path_sea *sea, const struct scene_place *from, 
     const struct scene_place *to = &sea->scene->hydrophones[hydrophone].place;
     double dx = to->x_m - from->x_m, dy = to->y_m - from->y_m;
     double dz = by_surface ? to->z_m + from->z_m : to->z_m - from->z_m;
-    return sqrt(dx * dx + dy * dy + dz * dz);
+    return fmax(1.0, sqrt(dx * dx + dy * dy + dz * dz));
 }
 
 static double range_at(const struct path_sea *sea, const struct scene_track *track, uint32_t hydrophone,

@@ -19,7 +19,8 @@ struct path_sea {
 
 struct path_sea path_sea_of(const struct scene *scene);
 
-/* Metres from a place to a hydrophone (from 0); by way of the surface: from the source's mirror image. */
+/* Metres from a place to a hydrophone (from 0); by way of the surface: from the source's mirror image.
+ * Never less than 1 m, nearer than which a source level means nothing. */
 double path_range_m(const struct path_sea *sea, const struct scene_place *from, uint32_t hydrophone,
                     bool by_surface);
 /* The place of a source when it gave what a hydrophone hears at time_s, as its range. */

@@ -206,6 +206,70 @@ static void the_surface_makes_a_lloyd_mirror(void **state)
     free(out);
 }
 
+/* A steady line: level by the sonar equation, and one pure tone across the tiles that sound is made in: what
+ * a fitted sine leaves is 80 dB below it. */
+static void a_ships_line_is_pure(void **state)
+{
+    (void)state;
+    scene.n_ships = 1;
+    scene.ships[0] = (struct scene_ship){
+        .track = {.at_start = {0, 250, 5}}, .n_lines = 1, .line_hz = {123.4}, .source_level_db = 150};
+    const int n = 5 * 48000;
+    float *out = render_all(48000, (uint32_t)n);
+    double re = 0, im = 0, sum = 0, left = 0;
+    for (int i = 0; i < n; i++) {
+        double angle = 2 * M_PI * 123.4 * i / 48000.0; /* 617 whole cycles */
+        re += 2 * (double)out[i] * cos(angle) / n;
+        im += 2 * (double)out[i] * sin(angle) / n;
+    }
+    for (int i = 0; i < n; i++) {
+        double angle = 2 * M_PI * 123.4 * i / 48000.0;
+        double rest = (double)out[i] - re * cos(angle) - im * sin(angle);
+        left += rest * rest;
+        sum += (double)out[i] * (double)out[i];
+    }
+    assert_near(units_spl_db(sum / n * pa() * pa()), 150 - 20 * log10(hypot(250, 10)), 0.01);
+    assert_true(left / sum < 1e-8);
+    free(out);
+}
+
+/* Energy of a ping: source level + 10 lg(length) - loss; of a shot: source energy level - loss. Counts by
+ * interval. */
+static void pings_and_shots_have_their_energy(void **state)
+{
+    (void)state;
+    listen_near();
+    scene.sea.depth_m = 0;
+    scene.sea.salinity = 35;
+    scene.duration_s = 20;
+    scene.n_echosounders = 1;
+    scene.echosounders[0] = (struct scene_echosounder){.track = {.at_start = {100, 0, 15}},
+                                                       .end_s = 9.9,
+                                                       .frequency_hz = 20000,
+                                                       .ping_s = 0.004,
+                                                       .ping_interval_s = 0.5,
+                                                       .source_level_db = 200};
+    float *out = render_all(0, 20 * 48000);
+    double exposure = 0;
+    for (int i = 0; i < 20 * 48000; i++)
+        exposure += (double)out[i] * (double)out[i] * pa() * pa() / 48000;
+    free(out);
+    /* 20 pings; 3.34971 dB/km at 20 kHz, 10 degree Celsius, salinity 35 (Francois and Garrison 1982). */
+    assert_near(units_sel_db(exposure / 20), 200 + 10 * log10(0.004) - 40 - 0.335, 0.02);
+    scene.n_echosounders = 0;
+    scene.n_airguns = 1;
+    scene.airguns[0] = (struct scene_airguns){.track = {.at_start = {1000, 0, 15}},
+                                              .end_s = 16,
+                                              .shot_interval_s = 8,
+                                              .source_energy_level_db = 230};
+    out = render_all(0, 20 * 48000);
+    exposure = 0;
+    for (int i = 0; i < 20 * 48000; i++)
+        exposure += (double)out[i] * (double)out[i] * pa() * pa() / 48000;
+    free(out);
+    assert_near(units_sel_db(exposure / 2), 230 - 60, 0.05);
+}
+
 static void fill(void)
 {
     scene.seed = 11;
@@ -407,6 +471,8 @@ int main(void)
         cmocka_unit_test_setup(delays_are_exact_to_a_fraction_of_a_sample, fresh),
         cmocka_unit_test_setup(a_moving_source_has_doppler, fresh),
         cmocka_unit_test_setup(the_surface_makes_a_lloyd_mirror, fresh),
+        cmocka_unit_test_setup(a_ships_line_is_pure, fresh),
+        cmocka_unit_test_setup(pings_and_shots_have_their_energy, fresh),
         cmocka_unit_test_setup(sameness_whatever_the_chunking, fresh),
         cmocka_unit_test_setup(seeds_and_neighbours, fresh),
         cmocka_unit_test_setup(a_converter_clips, fresh),
