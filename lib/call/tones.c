@@ -10,12 +10,13 @@
 #define SLICE_S 0.01 /* tracers and judge meet this often, at fixed frames: chunks cannot matter */
 #define CARRIED 0.46 /* of the rate: the band that a recording holds */
 #define HEADROOM 8.0 /* of a path's score over the threshold */
+#define MOST_PA 1e6F /* 240 dB re 1 uPa: more is a fault of the input, and would overflow a power */
 #define MAX_OPEN 96
 #define MAX_BANDS 16
 #define PASS_BAND 0.4 /* of a decimated rate (dsp/decimate.h) */
 /* How much more cautious the bound of tones_trace.h is than the rate in Gaussian noise, as an exponent:
  * measured over hours of noise at several rates (tests/scenario/tones_noise.c checks what comes of it). */
-#define BOUND_CAUTION 4.5
+#define BOUND_CAUTION 8.0
 #define MIN_FALSE_PER_HOUR 1e-3
 
 /* The sound at a rate of its own; each but the first is decimated from the one before. */
@@ -281,9 +282,17 @@ void tones_push(struct tones *tones, const float *pascals, uint32_t n, const str
 {
     if (n > 0)
         pay(tones, sink);
-    for (uint32_t i = 0; i < n; i++) {
-        tones->slice[tones->n_held++] = isfinite(pascals[i]) ? pascals[i] : 0;
-        if (++tones->next_frame == tones->slice_end) {
+    while (n > 0) {
+        uint64_t left = tones->slice_end - tones->next_frame;
+        uint32_t take = n < left ? n : (uint32_t)left;
+        float *slice = tones->slice + tones->n_held;
+        for (uint32_t i = 0; i < take; i++)
+            slice[i] = isfinite(pascals[i]) ? fminf(fmaxf(pascals[i], -MOST_PA), MOST_PA) : 0;
+        pascals += take;
+        n -= take;
+        tones->n_held += take;
+        tones->next_frame += take;
+        if (take == left) {
             tones->slice_end += tones->n_slice;
             run_slice(tones, sink);
         }

@@ -32,8 +32,8 @@ bool tones_can_hear(const struct tones *tones, uint32_t class_index);
  * what they give is handed out at the next push or finish. The background is kept. */
 void tones_reset(struct tones *tones, uint64_t next_frame);
 
-/* Takes n samples in pascals (what is not finite counts as 0); gives the calls that they make known, in the
- * order of known_frame. How the samples are cut into pieces changes nothing. */
+/* Takes n samples in pascals (what is not finite counts as 0, more than 1e6 Pa as 1e6); gives the calls that
+ * they make known, in the order of known_frame. How the samples are cut into pieces changes nothing. */
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink);
 
 /* Ends the sound: what is still open is judged and given. */

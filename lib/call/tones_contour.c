@@ -117,7 +117,8 @@ static void measure_course(const struct tracer *tracer, uint64_t last, uint32_t 
 {
     double power = 0;
     for (uint32_t i = 0; i < n; i++)
-        power += row_of(tracer->history_power, tracer, last - i)[tracer->trail[i]];
+        power += tone_power(tracer, row_of(tracer->history_power, tracer, last - i),
+                            row_of(tracer->history_snr, tracer, last - i), tracer->trail[i]);
     out->mean_square = power / n;
     out->low_hz = INFINITY;
     for (uint32_t p = 0; p < TRACE_POINTS; p++) {

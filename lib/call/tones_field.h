@@ -7,9 +7,16 @@
 #include "dsp/background.h"
 #include "dsp/spectrum.h"
 
+/* Reverberation: what has fallen this far below a path's recent level is its tail. A tail of shallow water
+ * decays by a few dB a second: 7 on a recording of song in a bay. */
+#define TAIL_SHARE 0.063F /* 12 dB */
+#define TAIL_FALL_DB_S 6.0
+#define SMOOTHING 0.33F /* of power, a frame */
+
 #define MAX_PATHS 48
 #define NO_PATH (-1)
 #define STEP_START INT8_MIN
+#define TILE 4     /* cells that are worked on at once */
 #define MAX_STEP 8 /* bins that a path may move in a frame */
 
 struct path {
@@ -22,9 +29,11 @@ struct path {
     uint32_t tip_bin;
 };
 
-/* One frame's cells of the recursion; [n_bins + 2 * MAX_STEP] with an empty margin. */
+/* One frame's cells of the recursion; [n_bins + 2 * MAX_STEP + TILE] with an empty margin of MAX_STEP in
+ * front. */
 struct cells {
     float *score, *slope;
+    float *level, *peak; /* smoothed power of the path's cells, and the highest of it, slowly forgotten */
     int16_t *path;
     uint64_t *first;
 };
@@ -32,6 +41,7 @@ struct cells {
 struct tracer {
     struct tracer_setup setup;
     double frame_rate;  /* frames a second */
+    float tail_fall;    /* what a recent level keeps in a frame */
     double bin_hz, hop; /* of the spectrum; hop in input frames */
     uint32_t n, n_bins, first_bin;
     uint32_t max_step, gap; /* bins a frame; frames that are bridged */

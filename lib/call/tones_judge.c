@@ -201,6 +201,19 @@ static void join(struct sound *to, struct sound *from)
     from->used = false;
 }
 
+/* A contour that no class wants but that goes on with a sound which waits to be given: the sound lasts as
+ * long. */
+static void prolong(struct judge *judge, const struct contour *c)
+{
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        struct sound *sound = &judge->sounds[i];
+        if (sound->used && !sound->given && c->end_frame > sound->end_frame && belongs(judge, sound, c)) {
+            sound->end_frame = c->end_frame;
+            return;
+        }
+    }
+}
+
 /* What is given cannot be changed any more: only weaker contours within its time are absorbed. */
 static bool is_piece(const struct sound *given, const struct contour *c)
 {
@@ -254,6 +267,8 @@ void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const 
     struct sound *sound = fits ? find_sound(judge, &c, &why) : NULL;
     if (sound)
         add_member(sound, &c);
+    else if (!fits && all == REJECT_COUNT)
+        prolong(judge, &c);
     for (uint32_t i = 0; i < judge->n_classes; i++) {
         if (judge->classes[i].tracer != tracer)
             continue;
@@ -325,7 +340,7 @@ static enum openness look_at_open(const struct judge *judge, const struct sound 
             overtone = overtone && is_overtone(&sound->members[m], &open[i]);
         if (overtone)
             return OVERTONE_OF_OPEN;
-        if (belongs(judge, sound, &open[i]))
+        if (open[i].end_frame > sound->end_frame && belongs(judge, sound, &open[i]))
             openness = GOES_ON;
     }
     return openness;

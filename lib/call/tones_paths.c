@@ -11,57 +11,102 @@
 #define GAP_COST 12.0F   /* fall of the score that ends a path: a gap of about 8 frames */
 #define SLOPE_GAIN 0.35F /* how fast the slope follows */
 
-/* For every cell the best path that leads to it; 0 where it is better to begin there. */
-static void find_best(struct tracer *tracer)
+/* Four floats that the compiler keeps in one register (an extension of GCC and Clang): comparisons keep a
+ * plain loop from becoming one. */
+typedef float four __attribute__((vector_size(16)));
+typedef int32_t four_masks __attribute__((vector_size(16)));
+
+static four load(const float *from)
 {
-    const uint32_t n = tracer->n_bins;
-    float *restrict best = tracer->best, *restrict chosen = tracer->step;
-    for (uint32_t k = 0; k < n; k++) {
-        best[k] = 0;
-        chosen[k] = STEP_START;
-    }
+    four out;
+    memcpy(&out, from, sizeof out);
+    return out;
+}
+
+static four choose(four_masks mask, four yes, four no)
+{
+    return (four)((mask & (four_masks)yes) | (~mask & (four_masks)no));
+}
+
+static four all(float x)
+{
+    return (four){x, x, x, x};
+}
+
+/* For four cells from k on the best path that leads to each; 0 where it is better to begin there. */
+static void find_best(struct tracer *tracer, uint32_t k)
+{
+    const four most = all(STEP_COST_MOST), least = all(STEP_COST), per_bin = all(STEP_COST_BIN);
+    four best = all(0), chosen = all(STEP_START);
     for (int d = -(int)tracer->max_step; d <= (int)tracer->max_step; d++) {
-        const float *restrict score = tracer->before.score + MAX_STEP - d;
-        const float *restrict slope = tracer->before.slope + MAX_STEP - d;
-        const float step = (float)d;
-        for (uint32_t k = 0; k < n; k++) {
-            float off = step - slope[k];
-            off = off < 0 ? -off : off;
-            float cost = STEP_COST_BIN * off;
-            cost = cost < STEP_COST_MOST - STEP_COST ? cost : STEP_COST_MOST - STEP_COST;
-            float candidate = score[k] - (cost + STEP_COST);
-            chosen[k] = candidate > best[k] ? step : chosen[k];
-            best[k] = candidate > best[k] ? candidate : best[k];
-        }
+        const four score = load(tracer->before.score + (int)(MAX_STEP + k) - d);
+        const four slope = load(tracer->before.slope + (int)(MAX_STEP + k) - d);
+        const four step = all((float)d);
+        four off = step - slope;
+        off = choose(off < all(0), -off, off);
+        four cost = least + per_bin * off;
+        cost = choose(cost < most, cost, most);
+        four candidate = score - cost;
+        four_masks better = candidate > best;
+        chosen = choose(better, step, chosen);
+        best = choose(better, candidate, best);
     }
+    memcpy(tracer->best + k, &best, sizeof best);
+    memcpy(tracer->step + k, &chosen, sizeof chosen);
+}
+
+#define TAIL_GAIN (-1.5F) /* of a cell that is only the tail of its path */
+
+/* The cell begins a path, or goes on from the one that the best path comes from. */
+static void begin_cell(struct tracer *tracer, uint32_t at, float power)
+{
+    struct cells *now = &tracer->now;
+    now->slope[at] = 0;
+    now->level[at] = now->peak[at] = power;
+    now->path[at] = NO_PATH;
+    now->first[at] = tracer->frame;
+}
+
+static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float power)
+{
+    struct cells *now = &tracer->now;
+    const struct cells *before = &tracer->before;
+    const uint32_t from = (uint32_t)((int)at - step);
+    const float peak = before->peak[from] * tracer->tail_fall;
+    now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
+    now->level[at] = before->level[from] + SMOOTHING * (power - before->level[from]);
+    now->peak[at] = now->level[at] > peak ? now->level[at] : peak;
+    now->path[at] = before->path[from];
+    now->first[at] = before->first[from];
+}
+
+static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
+{
+    const uint32_t at = k + MAX_STEP;
+    const int step = (int)tracer->step[k];
+    const float power = tracer->power[tracer->first_bin + k];
+    float gain = tracer->gain[k];
+    if (step != STEP_START && gain > TAIL_GAIN &&
+        power < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)])
+        gain = TAIL_GAIN;
+    const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + gain;
+    tracer->now.score[at] = score > 0 ? score : 0;
+    tracer->now.path[at] = NO_PATH;
+    if (score > 0 && step == STEP_START)
+        begin_cell(tracer, at, power);
+    else if (score > 0)
+        inherit_cell(tracer, at, step, power);
 }
 
 static void step_cells(struct tracer *tracer)
 {
     const float ceiling = (float)tracer->setup.ceiling;
-    struct cells *now = &tracer->now, *before = &tracer->before;
     int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE)
+        find_best(tracer, k);
     for (uint32_t k = 0; k < tracer->n_bins; k++) {
-        const uint32_t at = k + MAX_STEP;
-        float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + tracer->gain[k];
-        int step = (int)tracer->step[k];
-        steps[k] = (int8_t)step;
-        if (score <= 0) {
-            now->score[at] = now->slope[at] = 0;
-            now->path[at] = NO_PATH;
-            continue;
-        }
-        now->score[at] = score;
-        if (step == STEP_START) {
-            now->slope[at] = 0;
-            now->path[at] = NO_PATH;
-            now->first[at] = tracer->frame;
-        } else {
-            const uint32_t from = (uint32_t)((int)at - step);
-            now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
-            now->path[at] = before->path[from];
-            now->first[at] = before->first[from];
-        }
+        step_cell(tracer, k, ceiling);
+        steps[k] = (int8_t)tracer->step[k];
     }
 }
 
@@ -172,7 +217,6 @@ static void open_paths(struct tracer *tracer, const struct trace_sink *sink)
 
 void paths_advance(struct tracer *tracer, const struct trace_sink *sink)
 {
-    find_best(tracer);
     step_cells(tracer);
     find_tips(tracer);
     follow_paths(tracer, sink);

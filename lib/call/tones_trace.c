@@ -4,10 +4,8 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define DESIGN_SNR 5.0F  /* of a cell, for which the likelihood ratio is made: near the weakest of use */
-#define MAX_GAIN 5.0F    /* of one cell: a single loud frame says little about a tone */
-#define TAIL_BELOW_DB 12 /* reverberation: what is so far below a bin's recent level ... */
-#define TAIL_FALL_DB_S 6 /* ... falling by so much a second, is a tail (measured on a recording in a bay) */
+#define DESIGN_SNR 5.0F /* of a cell, for which the likelihood ratio is made: near the weakest of use */
+#define MAX_GAIN 5.0F   /* of one cell: a single loud frame says little about a tone */
 #define OCCUPANCY_S 30
 #define OCCUPANCY_SNR 4.0F
 #define TRANSIENT_LIMIT 5.0F /* times the frame's level; with the power of 6 as Gillespie et al. 2013 */
@@ -40,6 +38,7 @@ static void choose_bins(struct tracer *tracer)
     tracer->n_bins = last >= tracer->first_bin ? last - tracer->first_bin + 1 : 0;
     double step = ceil(setup->max_rate_hz_s / tracer->frame_rate / tracer->bin_hz);
     tracer->max_step = (uint32_t)fmin(fmax(step, 1), MAX_STEP);
+    tracer->tail_fall = (float)pow(10, -TAIL_FALL_DB_S / 10 / tracer->frame_rate);
     tracer->n_history = (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + 4;
 }
 
@@ -54,15 +53,19 @@ static bool make_cells(struct cells *cells, size_t n)
 {
     cells->score = calloc(n, sizeof *cells->score);
     cells->slope = calloc(n, sizeof *cells->slope);
+    cells->level = calloc(n, sizeof *cells->level);
+    cells->peak = calloc(n, sizeof *cells->peak);
     cells->path = calloc(n, sizeof *cells->path);
     cells->first = calloc(n, sizeof *cells->first);
-    return cells->score && cells->slope && cells->path && cells->first;
+    return cells->score && cells->slope && cells->level && cells->peak && cells->path && cells->first;
 }
 
 static void free_cells(struct cells *cells)
 {
     free(cells->score);
     free(cells->slope);
+    free(cells->level);
+    free(cells->peak);
     free(cells->path);
     free(cells->first);
 }
@@ -74,9 +77,9 @@ static bool make_arrays(struct tracer *tracer)
                                &tracer->gain,  &tracer->best,  &tracer->step};
     bool good = true;
     for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
-        good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
-    good = make_cells(&tracer->now, k + 2 * MAX_STEP) && good;
-    good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
+        good = (*of_bins[i] = calloc(k + TILE, sizeof(float))) && good;
+    good = make_cells(&tracer->now, k + 2 * MAX_STEP + TILE) && good;
+    good = make_cells(&tracer->before, k + 2 * MAX_STEP + TILE) && good;
     good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
     good = (tracer->limited = calloc(tracer->n, sizeof(float))) && good;
     good = (tracer->power = calloc(tracer->n / 2 + 1, sizeof(float))) && good;
@@ -148,12 +151,10 @@ static void limit_transients(const float *in, float *out, uint32_t n)
     }
 }
 
-/* From power to log-likelihood ratios, over the background or the tail of what was just heard there. */
+/* From power to log-likelihood ratios, over the background or the tail of a path that has just been there. */
 static void weigh_cells(struct tracer *tracer)
 {
     const float *power = tracer->power + tracer->first_bin;
-    const float fall = (float)pow(10, -TAIL_FALL_DB_S / 10.0 / tracer->frame_rate);
-    const float below = (float)pow(10, -TAIL_BELOW_DB / 10.0);
     const float remember = (float)(1 / (OCCUPANCY_S * tracer->frame_rate));
     const float slope = DESIGN_SNR / (1 + DESIGN_SNR), offset = logf(1 + DESIGN_SNR);
     float *snr = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
@@ -163,8 +164,9 @@ static void weigh_cells(struct tracer *tracer)
         tracer->gain[k] = gain < MAX_GAIN ? gain : MAX_GAIN;
         snr[k] = power[k] / tracer->level[k];
         tracer->occupancy[k] += ((snr[k] > OCCUPANCY_SNR ? 1 : 0) - tracer->occupancy[k]) * remember;
-        tracer->smooth[k] += (power[k] - tracer->smooth[k]) * 0.33F;
-        float tail = tracer->smooth[k] * below, old = tracer->floor[k] * fall;
+        tracer->smooth[k] += (power[k] - tracer->smooth[k]) * SMOOTHING;
+        float tail = tracer->before.path[k + MAX_STEP] == NO_PATH ? 0 : tracer->smooth[k] * TAIL_SHARE;
+        float old = tracer->floor[k] * tracer->tail_fall;
         tracer->floor[k] = tail > old ? tail : old;
     }
 }

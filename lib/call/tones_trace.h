@@ -62,7 +62,7 @@ void tracer_destroy(struct tracer *tracer);
 void tracer_push(struct tracer *tracer, const float *samples, uint32_t n, const struct trace_sink *sink);
 /* Ends the open contours; the next sample is input frame `next_frame`. The background is kept. */
 void tracer_end(struct tracer *tracer, uint64_t next_frame, const struct trace_sink *sink);
-/* Contours that are open now: their times, hz, low_hz, high_hz, bin_hz and mean_square (of the middle cells)
+/* Contours that are open now: their times, hz, low_hz, high_hz, bin_hz and mean_square
  * only. Returns how many were written. */
 uint32_t tracer_get_open(struct tracer *tracer, struct contour *out, uint32_t max_count);
 /* Cells a second of the band: from each of them noise could begin a path. */

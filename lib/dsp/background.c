@@ -15,9 +15,17 @@
 #define STRETCH 32            /* bins whose median over frequency tells broadband sound */
 #define BROADBAND_RATIO 1.41F /* over the mean; 1.5 dB */
 
+/* What a step multiplies by. */
+struct step {
+    float up, down;
+};
+
 struct background {
     uint32_t n_bins;
-    double frames_per_s, step_db;
+    double frames_per_s;
+    double step_db, next_step_db; /* at last, and of the next frame */
+    struct step step, fast_step;  /* of the next frame; the fast one where all of a stretch has risen */
+    float caution;                /* what the estimate is raised by while it is young */
     uint64_t n_frames;
     float *quantile; /* [n_bins] */
 };
@@ -85,20 +93,30 @@ static double step_of(const struct background *background)
     return fmax(background->step_db, FIRST_STEP_DB * first / fmax(first, (double)background->n_frames));
 }
 
-/* How far the estimate may be off while it is young: twice its standard deviation, sqrt(step q (1 - q) / (2
- * f)) of a stochastic approximation with f = 0.0575 per dB, the density of noise in dB at the quantile. */
-static float caution_of(const struct background *background, double step_db)
+static struct step make_step(double step_db)
 {
-    const double scale = sqrt(QUANTILE * (1 - QUANTILE) / (2 * 0.0575));
-    return (float)pow(10, 2 * scale * (sqrt(step_db) - sqrt(background->step_db)) / 10);
+    return (struct step){(float)pow(10, QUANTILE * step_db / 10),
+                         (float)pow(10, -(1 - QUANTILE) * step_db / 10)};
 }
 
-static void learn(const float *power, float *quantile, uint32_t n, double step_db)
+/* The caution is twice the standard deviation of a young estimate, sqrt(step q (1 - q) / (2 f)) for a
+ * stochastic approximation with f = 0.0575 per dB, the density of noise in dB at the quantile. */
+static void prepare_step(struct background *background)
 {
-    const float up = (float)pow(10, QUANTILE * step_db / 10);
-    const float down = (float)pow(10, -(1 - QUANTILE) * step_db / 10);
+    const double scale = sqrt(QUANTILE * (1 - QUANTILE) / (2 * 0.0575));
+    double step_db = step_of(background);
+    if (step_db == background->next_step_db)
+        return;
+    background->next_step_db = step_db;
+    background->step = make_step(step_db);
+    background->fast_step = make_step(BROADBAND_SPEED * step_db);
+    background->caution = (float)pow(10, 2 * scale * (sqrt(step_db) - sqrt(background->step_db)) / 10);
+}
+
+static void learn(const float *power, float *quantile, uint32_t n, struct step step)
+{
     for (uint32_t k = 0; k < n; k++) {
-        float next = quantile[k] * (power[k] > quantile[k] ? up : down);
+        float next = quantile[k] * (power[k] > quantile[k] ? step.up : step.down);
         quantile[k] = next > 1e-30F ? next : 1e-30F;
     }
 }
@@ -149,15 +167,15 @@ void background_push(struct background *background, const float *power, float *o
         background->n_frames = 0;
     if (background->n_frames == 0)
         start(background, power);
-    const double step_db = step_of(background);
-    const float caution = caution_of(background, step_db);
+    prepare_step(background);
+    const float scale = background->caution * (float)(1 / QUANTILE_OF_MEAN);
     for (uint32_t i = 0; i < n_stretches; i++) {
         uint32_t low = n * i / n_stretches, high = n * (i + 1) / n_stretches;
         float *quantile = background->quantile + low;
         for (uint32_t k = low; k < high; k++)
-            out_background[k] = background->quantile[k] * (float)(1 / QUANTILE_OF_MEAN) * caution;
+            out_background[k] = background->quantile[k] * scale;
         bool raised = raise_broadband(power + low, out_background + low, high - low);
-        learn(power + low, quantile, high - low, raised ? BROADBAND_SPEED * step_db : step_db);
+        learn(power + low, quantile, high - low, raised ? background->fast_step : background->step);
     }
     background->n_frames++;
 }

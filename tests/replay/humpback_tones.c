@@ -149,6 +149,7 @@ static void song_units_are_found_and_little_else(void **state)
     assert_true(n_matched >= 12);
     assert_true(calls->n <= 40);
     assert_true(n_baleen >= 0.8 * calls->n);
+    assert_int_equal(n_late, 0);
     free(calls);
     free(catalogue);
     free(samples);
