@@ -280,11 +280,8 @@ static enum status begin_record(struct chain *chain)
                               .command = chain->setup.scan ? "scan" : "watch",
                               .start_from = chain->start_from,
                               .input = chain->inputs.data};
-    enum status status = recorder_create(chain->outbox, chain->run, chain->zero_unix_ns,
-                                         count_channels(chain), &chain->recorder);
-    if (status == STATUS_OK)
-        status =
-            recorder_begin(chain->recorder, &chain->mark, &facts, chain->permit, chain->permit_text.data);
+    enum status status =
+        recorder_begin(chain->recorder, &chain->mark, &facts, chain->permit, chain->permit_text.data);
     for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++)
         for (uint32_t c = 0; c < stream_get_facts(chain->streams[i])->n_channels && status == STATUS_OK;
              c++) {
@@ -302,7 +299,7 @@ static enum status begin_record(struct chain *chain)
     return status;
 }
 
-static enum status start_watcher(struct chain *chain)
+static enum status create_watcher(struct chain *chain)
 {
     struct watcher_setup setup = {.merge = chain->merge,
                                   .watch = chain->watch,
@@ -317,7 +314,9 @@ static enum status start_watcher(struct chain *chain)
                                   .notes = chain->notes,
                                   .n_notes = chain->n_notes};
     enum status status = watcher_create(&setup, &chain->watcher);
-    return status == STATUS_OK ? watcher_start(chain->watcher, &chain->mark) : status;
+    if (status == STATUS_OK)
+        watcher_show(chain->watcher, chain->restored.last_ns);
+    return status;
 }
 
 static void set_committed(void *context, const struct ledger_line *lines, size_t n)
@@ -354,16 +353,22 @@ enum status chain_start(struct chain *chain, struct problems *problems)
     enum status status = outbox_create(&outbox, &chain->outbox);
     if (status != STATUS_OK)
         return status;
-    write_missing(chain);
-    status = begin_record(chain);
+    status = recorder_create(chain->outbox, chain->run, chain->zero_unix_ns, count_channels(chain),
+                             &chain->recorder);
+    if (status == STATUS_OK)
+        status = create_watcher(chain);
     if (status == STATUS_OK)
         status = start_pages(chain, problems);
+    if (status != STATUS_OK)
+        return status; /* nothing was recorded yet */
+    write_missing(chain);
+    status = begin_record(chain);
     double skip_s = chain->run > 1 ? time_to_s(chain->mark.outage_end_ns) : 0;
     for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++) {
         status = stream_prepare(chain->streams[i], chain->run, chain->mark.outage_end_ns, skip_s);
     }
     if (status == STATUS_OK)
-        status = start_watcher(chain);
+        status = watcher_start(chain->watcher, &chain->mark);
     for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++)
         status = stream_start(chain->streams[i], chain->merge);
     return status;

@@ -321,11 +321,21 @@ static void name_streams(struct watcher *watcher)
     }
 }
 
+void watcher_show(struct watcher *watcher, int64_t watch_ns)
+{
+    name_streams(watcher);
+    watcher->changed = true;
+    keep_state(watcher, watch_ns);
+    if (watcher->setup.board) {
+        watch_get_view(watcher->setup.watch, watcher->view);
+        keep_status(watcher, board_publish(watcher->setup.board, watcher->view, watcher->hearing));
+    }
+}
+
 enum status watcher_start(struct watcher *watcher, const struct run_mark *mark)
 {
     struct event event = {.kind = EVENT_RUN, .counter = 1, .known_ns = mark->outage_end_ns};
     event.as.run_mark = *mark;
-    name_streams(watcher);
     push(watcher, &event);
     watcher->note_counter = 0;
     if (pthread_create(&watcher->thread, NULL, run_watch, watcher) != 0)

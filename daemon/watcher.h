@@ -33,6 +33,9 @@ struct watcher_setup {
 };
 
 enum status watcher_create(const struct watcher_setup *setup, struct watcher **out);
+/* Publishes what the watch knows now, before anything starts: a page that asks at once sees what is in force.
+ */
+void watcher_show(struct watcher *watcher, int64_t watch_ns);
 /* Starts the thread. `mark` is the run's first event. */
 enum status watcher_start(struct watcher *watcher, const struct run_mark *mark);
 /* Waits until every stream has ended or watcher_stop was called elsewhere; false after wait_s. */
