@@ -2,6 +2,7 @@
  * a frame later then have squares that sum to exactly 1 (Princen and Bradley, IEEE Trans. ASSP 34, 1986), so
  * that half-overlapped frames weigh every sample alike. */
 #include "dsp/spectrum.h"
+#include "dsp/lanes.h"
 #include <fftw3.h>
 #include <math.h>
 #include <stdlib.h>
@@ -70,6 +71,19 @@ void spectrum_destroy(struct spectrum *spectrum)
     free(spectrum);
 }
 
+/* Squared magnitudes of complex bins, times scale. */
+static void square_bins(const float *bins, uint32_t n_bins, float scale, float *power)
+{
+    uint32_t k = 0;
+    for (; k + LANES <= n_bins; k += LANES) {
+        lanes a = lanes_load(bins + 2 * k), b = lanes_load(bins + 2 * k + LANES);
+        lanes re = __builtin_shufflevector(a, b, 0, 2, 4, 6), im = __builtin_shufflevector(a, b, 1, 3, 5, 7);
+        lanes_store(power + k, (re * re + im * im) * scale);
+    }
+    for (; k < n_bins; k++)
+        power[k] = (bins[2 * k] * bins[2 * k] + bins[2 * k + 1] * bins[2 * k + 1]) * scale;
+}
+
 void spectrum_power(struct spectrum *spectrum, const float *frame, float *out_power)
 {
     const uint32_t n = spectrum->n;
@@ -78,14 +92,10 @@ void spectrum_power(struct spectrum *spectrum, const float *frame, float *out_po
     for (uint32_t i = 0; i < n; i++)
         windowed[i] = frame[i] * window[i];
     fftwf_execute(spectrum->plan);
-    const float *restrict bins = spectrum->bins;
-    float *restrict power = out_power;
-    const float scale = spectrum->scale;
-    for (uint32_t k = 0; k < n / 2 + 1; k++)
-        power[k] = (bins[2 * k] * bins[2 * k] + bins[2 * k + 1] * bins[2 * k + 1]) * scale;
+    square_bins(spectrum->bins, n / 2 + 1, spectrum->scale, out_power);
     /* DC and Nyquist have no mirror bin to stand for. */
-    power[0] *= 0.5f;
-    power[n / 2] *= 0.5f;
+    out_power[0] *= 0.5f;
+    out_power[n / 2] *= 0.5f;
 }
 
 const float *spectrum_get_window(const struct spectrum *spectrum)

@@ -1,6 +1,7 @@
 /* Decidecades from one or two FFT stages and a bank of low band-pass filters. */
 #include "level/decidecades.h"
 #include "dsp/filter.h"
+#include "dsp/lanes.h"
 #include "dsp/spectrum.h"
 #include <fftw3.h>
 #include <math.h>
@@ -20,7 +21,6 @@
 /* Noise bandwidth of a Butterworth filter over its -3 dB width: (pi / 2n) / sin(pi / 2n), n = 4. */
 #define NOISE_BANDWIDTH 1.0261721529770308
 #define FILTER_DELAY 0.8535 /* group delay at the centre times the bandwidth: 2.6131 / pi x 1.0262 */
-#define LANES 8
 
 /* Bins of a band: the first and last by the part of them that lies inside. */
 struct band_bins {
@@ -238,22 +238,19 @@ uint32_t decidecades_get_hop(const struct decidecades *d)
     return d->stages[0].hop;
 }
 
-/* Sum of a band's bins, in lanes so that several are added at once. */
+/* Sum of a band's bins. */
 static double sum_bins(const struct band_bins *bins, const float *power)
 {
     if (bins->first == bins->last)
         return power[bins->first] * (bins->first_weight + bins->last_weight - 1);
-    float lanes[LANES] = {0};
+    lanes inner = {0};
     uint32_t k = bins->first + 1;
     for (; k + LANES <= bins->last; k += LANES)
-        for (uint32_t j = 0; j < LANES; j++)
-            lanes[j] += power[k + j];
-    double sum =
-        (double)power[bins->first] * bins->first_weight + (double)power[bins->last] * bins->last_weight;
+        inner += lanes_load(power + k);
+    double sum = lanes_sum(inner) + (double)power[bins->first] * bins->first_weight +
+                 (double)power[bins->last] * bins->last_weight;
     for (; k < bins->last; k++)
         sum += power[k];
-    for (uint32_t j = 0; j < LANES; j++)
-        sum += lanes[j];
     return sum;
 }
 

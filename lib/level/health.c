@@ -1,6 +1,7 @@
 /* What is wrong with one channel. */
 #include "level/health.h"
 #include "base/units.h"
+#include "dsp/lanes.h"
 #include "level/decidecades.h"
 #include <math.h>
 #include <stddef.h>
@@ -8,7 +9,6 @@
 #include <string.h>
 
 #define CELL 256u
-#define LANES 8u
 #define FULL_SCALE (1.0f - 0x1p-15f)
 #define CLIP_RUN 2u
 #define CLIP_HOLD_S 0.1
@@ -148,23 +148,20 @@ static void hold_fault(struct health *health, enum health_cause cause, uint64_t 
         give(health, cause, fault->given + piece_frames(health, fault), known, sink);
 }
 
-static struct cell measure_cell(const float *restrict x)
+static struct cell measure_cell(const float *x)
 {
-    float least[LANES], greatest[LANES], sum[LANES];
-    for (uint32_t j = 0; j < LANES; j++)
-        least[j] = greatest[j] = sum[j] = x[j];
-    for (uint32_t i = LANES; i < CELL; i += LANES)
-        for (uint32_t j = 0; j < LANES; j++) {
-            float v = x[i + j];
-            least[j] = v < least[j] ? v : least[j];
-            greatest[j] = v > greatest[j] ? v : greatest[j];
-            sum[j] += v;
-        }
-    struct cell cell = {least[0], greatest[0], 0};
-    for (uint32_t j = 0; j < LANES; j++) {
+    lanes least = lanes_load(x), greatest = least, sum = {0}, more = {0};
+    for (uint32_t i = 0; i < CELL; i += 2 * LANES) {
+        lanes v = lanes_load(x + i), w = lanes_load(x + i + LANES);
+        least = lanes_least(lanes_least(v, w), least);
+        greatest = lanes_greatest(lanes_greatest(v, w), greatest);
+        sum += v;
+        more += w;
+    }
+    struct cell cell = {least[0], greatest[0], lanes_sum(sum + more)};
+    for (uint32_t j = 1; j < LANES; j++) {
         cell.least = least[j] < cell.least ? least[j] : cell.least;
         cell.greatest = greatest[j] > cell.greatest ? greatest[j] : cell.greatest;
-        cell.sum += sum[j];
     }
     return cell;
 }

@@ -1,12 +1,12 @@
 /* Cells of about 1 ms and their background. */
 #include "level/impulse_cells.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <string.h>
 
 #define SLOT_RATE_HZ 4000.0
-#define LANES 8u
 #define SHORT_LOOK 8u
-#define LONG_LOOK 32u
+#define LONG_LOOK CELL_LONG_LOOK
 #define MEMORY 3000.0   /* cells over which the background is averaged */
 #define EVERY_CELL 1000 /* thresholds are renewed with every cell up to here, then with every so many */
 #define SOME_CELLS 8
@@ -32,6 +32,7 @@ void cells_reset(struct cells *cells)
 {
     for (uint32_t b = 0; b < CELL_BANDS; b++)
         filter_reset(&cells->filters[b]);
+    memset(cells->recent, 0, sizeof cells->recent);
     cells->next = 0;
 }
 
@@ -40,42 +41,50 @@ const struct cell *cells_get(const struct cells *cells, uint64_t index)
     return &cells->ring[index % CELL_RING];
 }
 
-/* Sum and sum of squares of one slot, in lanes so that several samples are added at once. */
-static void sum_slot(const float *restrict x, uint32_t n, double *sum, double *squares)
+/* Sum and sum of squares of one slot, at most 250 samples. */
+static void sum_slot(const float *x, uint32_t n, double *sum, double *squares)
 {
-    float sums[LANES] = {0}, square[LANES] = {0};
+    lanes sums = {0}, more_sums = {0}, square = {0}, more_square = {0};
     uint32_t i = 0;
-    for (; i + LANES <= n; i += LANES)
-        for (uint32_t j = 0; j < LANES; j++) {
-            sums[j] += x[i + j];
-            square[j] += x[i + j] * x[i + j];
-        }
+    for (; i + 2 * LANES <= n; i += 2 * LANES) {
+        lanes v = lanes_load(x + i), w = lanes_load(x + i + LANES);
+        sums += v;
+        more_sums += w;
+        square += v * v;
+        more_square += w * w;
+    }
+    *sum = lanes_sum(sums + more_sums);
+    *squares = lanes_sum(square + more_square);
     for (; i < n; i++) {
-        sums[0] += x[i];
-        square[0] += x[i] * x[i];
-    }
-    *sum = *squares = 0;
-    for (uint32_t j = 0; j < LANES; j++) {
-        *sum += sums[j];
-        *squares += square[j];
+        *sum += x[i];
+        *squares += (double)x[i] * x[i];
     }
 }
 
-/* Means over the last cells: of a band, of the sum of bands. Cells before the first count as silence. */
-static double band_mean(const struct cells *cells, uint32_t band, uint32_t n)
+/* Sum of the last n cells' values; those before the first count as silence. Two sums side by side are faster.
+ */
+static double sum_last(const double *recent, uint64_t last, uint32_t n)
 {
-    double sum = 0;
-    for (uint32_t k = 0; k < n && k <= cells->next; k++)
-        sum += cells_get(cells, cells->next - k)->band[band];
-    return sum / n;
+    double even = 0, odd = 0;
+    for (uint32_t k = 0; k < n; k += 2) {
+        even += recent[(last - k) % LONG_LOOK];
+        odd += recent[(last - k - 1) % LONG_LOOK];
+    }
+    return even + odd;
 }
 
-static double total_mean(const struct cells *cells, uint32_t n)
+/* The means over the last cells. */
+static void look_back(struct cells *cells, struct cell *cell)
 {
-    double sum = 0;
-    for (uint32_t k = 0; k < n && k <= cells->next; k++)
-        sum += cells_get(cells, cells->next - k)->total;
-    return sum / n;
+    const uint64_t last = cells->next + LONG_LOOK; /* so that looking back never passes 0 */
+    for (uint32_t b = 0; b < CELL_BANDS; b++) {
+        cells->recent[b][last % LONG_LOOK] = cell->band[b];
+        cell->look[b] = sum_last(cells->recent[b], last, look_cells[b]) / look_cells[b];
+    }
+    double *totals = cells->recent[CELL_BANDS];
+    totals[last % LONG_LOOK] = cell->total;
+    cell->short_level = sum_last(totals, last, SHORT_LOOK) / SHORT_LOOK;
+    cell->long_level = sum_last(totals, last, LONG_LOOK) / LONG_LOOK;
 }
 
 const struct cell *cells_push(struct cells *cells, const float *samples)
@@ -94,10 +103,7 @@ const struct cell *cells_push(struct cells *cells, const float *samples)
     }
     for (uint32_t b = 0; b < CELL_BANDS; b++)
         cell->total += cell->band[b];
-    for (uint32_t b = 0; b < CELL_BANDS; b++)
-        cell->look[b] = band_mean(cells, b, look_cells[b]);
-    cell->short_level = total_mean(cells, SHORT_LOOK);
-    cell->long_level = total_mean(cells, LONG_LOOK);
+    look_back(cells, cell);
     return cell;
 }
 

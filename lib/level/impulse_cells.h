@@ -9,7 +9,8 @@
 #include <stdint.h>
 
 #define CELL_BANDS 3u
-#define CELL_SLOTS 4u   /* of about 0.25 ms each */
+#define CELL_SLOTS 4u /* of about 0.25 ms each */
+#define CELL_LONG_LOOK 32u
 #define CELL_RING 2048u /* cells remembered: more than the longest window */
 
 /* One cell: mean squares of the bands, of the bands' looks that end with it, and of its own samples. */
@@ -23,7 +24,8 @@ struct cell {
 struct cells {
     uint32_t slot_frames, cell_frames;
     struct filter filters[CELL_BANDS];
-    uint64_t next; /* index of the next cell, from 0 at the reset */
+    uint64_t next;                                 /* index of the next cell, from 0 at the reset */
+    double recent[CELL_BANDS + 1][CELL_LONG_LOOK]; /* of each band and their total, by index */
     struct cell ring[CELL_RING];
 };
 

@@ -42,10 +42,11 @@ struct finder_window {
 struct impulse_finder {
     double rate_hz, full_scale_pa;
     uint32_t cell_frames;
-    float *samples;                      /* [capacity], the last ones pushed */
-    uint32_t capacity, kept, fill, used; /* kept: what survives a move; used: samples in whole cells */
-    uint64_t start_frame;                /* of the last reset */
-    uint64_t quiet_since;                /* cell from which the sound may be background */
+    float *ring;           /* [KEPT_CELLS * cell_frames], the last samples pushed */
+    float *window_samples; /* as many: those of the window that is measured, in one piece */
+    uint32_t fill;         /* samples of the cell that is not whole yet */
+    uint64_t start_frame;  /* of the last reset */
+    uint64_t quiet_since;  /* cell from which the sound may be background */
     struct tone_part *tone_part;
     struct cells cells;
     struct cell_background background;
@@ -67,10 +68,11 @@ enum status impulse_finder_create(double rate_hz, double full_scale_pa, struct i
     finder->full_scale_pa = full_scale_pa;
     cells_create(&finder->cells, rate_hz);
     finder->cell_frames = finder->cells.cell_frames;
-    finder->kept = KEPT_CELLS * finder->cell_frames;
-    finder->capacity = finder->kept / 2 * 3;
-    finder->samples = malloc(finder->capacity * sizeof *finder->samples);
-    if (!finder->samples || tone_part_create(finder->cells.slot_frames, &finder->tone_part)) {
+    const size_t kept = (size_t)KEPT_CELLS * finder->cell_frames;
+    finder->ring = malloc(kept * sizeof *finder->ring);
+    finder->window_samples = malloc(kept * sizeof *finder->window_samples);
+    if (!finder->ring || !finder->window_samples ||
+        tone_part_create(finder->cells.slot_frames, &finder->tone_part)) {
         impulse_finder_destroy(finder);
         return STATUS_NO_MEMORY;
     }
@@ -84,14 +86,15 @@ void impulse_finder_destroy(struct impulse_finder *finder)
     if (!finder)
         return;
     tone_part_destroy(finder->tone_part);
-    free(finder->samples);
+    free(finder->ring);
+    free(finder->window_samples);
     free(finder);
 }
 
 void impulse_finder_reset(struct impulse_finder *finder, uint64_t next_frame)
 {
     cells_reset(&finder->cells);
-    finder->fill = finder->used = 0;
+    finder->fill = 0;
     finder->start_frame = next_frame;
     finder->quiet_since = WARM_UP;
     memset(&finder->background, 0, sizeof finder->background);
@@ -167,15 +170,28 @@ static bool judge(struct impulse_finder *finder, const struct impulse_measures *
     return false;
 }
 
+static float *ring_at(const struct impulse_finder *finder, uint64_t cell)
+{
+    return finder->ring + cell % KEPT_CELLS * finder->cell_frames;
+}
+
+/* The window's samples in one piece. */
+static const float *gather(const struct impulse_finder *finder, uint64_t start, uint64_t end)
+{
+    const size_t cell_bytes = finder->cell_frames * sizeof(float);
+    for (uint64_t c = start; c < end; c++)
+        memcpy(finder->window_samples + (c - start) * finder->cell_frames, ring_at(finder, c), cell_bytes);
+    return finder->window_samples;
+}
+
 /* Closes the window before cell `end`, and gives what it holds if that is an impulse. */
 static void close_window(struct impulse_finder *finder, uint64_t end, bool overlapped,
                          const struct impulse_sink *sink)
 {
     const struct cell_background *background = &finder->background;
     const struct finder_window *window = &finder->window;
-    uint64_t behind = (finder->cells.next + 1 - window->start) * finder->cell_frames;
     uint64_t n = (end - window->start) * finder->cell_frames;
-    struct impulse_window sound = {.pascals = finder->samples + finder->used + finder->cell_frames - behind,
+    struct impulse_window sound = {.pascals = gather(finder, window->start, end),
                                    .n = n,
                                    .rate_hz = finder->rate_hz,
                                    .mean_pa = background->mean,
@@ -267,31 +283,21 @@ static void take_cell(struct impulse_finder *finder, const float *x, const struc
         background_learn(&finder->background, cells_get(&finder->cells, now - DELAY));
 }
 
-/* Makes room at the end by forgetting all but the last samples. */
-static void make_room(struct impulse_finder *finder)
-{
-    uint32_t gone = finder->fill - finder->kept;
-    memmove(finder->samples, finder->samples + gone, finder->kept * sizeof *finder->samples);
-    finder->fill -= gone;
-    finder->used -= gone;
-}
-
 void impulse_finder_push(struct impulse_finder *finder, const float *pascals, uint32_t n,
                          const struct impulse_sink *sink)
 {
     while (n) {
-        if (finder->fill == finder->capacity)
-            make_room(finder);
-        uint32_t room = finder->capacity - finder->fill, take = n < room ? n : room;
-        memcpy(finder->samples + finder->fill, pascals, take * sizeof *pascals);
+        float *cell = ring_at(finder, finder->cells.next);
+        uint32_t room = finder->cell_frames - finder->fill, take = n < room ? n : room;
+        memcpy(cell + finder->fill, pascals, take * sizeof *pascals);
         finder->fill += take;
         pascals += take;
         n -= take;
-        while (finder->fill - finder->used >= finder->cell_frames) {
-            take_cell(finder, finder->samples + finder->used, sink);
-            finder->cells.next++;
-            finder->used += finder->cell_frames;
-        }
+        if (finder->fill < finder->cell_frames)
+            return;
+        take_cell(finder, cell, sink);
+        finder->cells.next++;
+        finder->fill = 0;
     }
 }
 

@@ -1,20 +1,22 @@
 /* Levels of one channel, one a second. */
 #include "level/meter.h"
 #include "base/units.h"
+#include "dsp/lanes.h"
 #include "level/decidecades.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define LANES 8
+#define RUN 64u /* samples summed in single precision before the double sums take them */
+#define DC_SECONDS 8
 #define HELD 4 /* seconds whose bands are not complete yet, at most two in fact */
 
 /* What the samples of one second gave. */
 struct running {
     uint64_t start_frame;
     uint32_t frames;
-    double sum_squares;
-    float peak;
+    double sum, sum_squares;
+    float least, greatest;
 };
 
 struct meter {
@@ -24,6 +26,10 @@ struct meter {
     uint64_t next_frame;
     uint64_t next_second; /* the first not given yet */
     struct running seconds[HELD];
+    bool know_dc;
+    double dc_pa; /* running mean of the samples, which is no sound */
+    bool know_offset;
+    float offset_pa; /* mean of the first hop, taken off before the decidecades so that they see no step */
     struct decidecades *decidecades;
     float *pending; /* [hop] frames on their way to the decidecades */
 };
@@ -67,6 +73,7 @@ void meter_reset(struct meter *meter, uint64_t next_frame)
     meter->next_frame = next_frame;
     meter->next_second = next_frame / meter->rate_hz;
     meter->fill = meter->counted = 0;
+    meter->know_dc = meter->know_offset = false;
     memset(meter->seconds, 0, sizeof meter->seconds);
     decidecades_reset(meter->decidecades, next_frame);
 }
@@ -78,6 +85,14 @@ static double band_db(const struct decidecade_sums *sums, uint32_t band, double 
     if (sums->frames[band] * width_hz < rate_hz)
         return NAN;
     return units_spl_db(sums->energy[band] / sums->frames[band]);
+}
+
+/* The first second's mean, then an average over about DC_SECONDS that the second itself is part of. */
+static double follow_dc(struct meter *meter, double mean)
+{
+    meter->dc_pa += meter->know_dc ? (mean - meter->dc_pa) / DC_SECONDS : mean - meter->dc_pa;
+    meter->know_dc = true;
+    return meter->dc_pa;
 }
 
 static void give(struct meter *meter, const struct level_sink *sink)
@@ -92,8 +107,10 @@ static void give(struct meter *meter, const struct level_sink *sink)
                                 .n_bands = meter->n_bands,
                                 .relative = meter->relative};
     if (running->frames >= METER_SHORTEST_S * meter->rate_hz) {
-        level.spl_db = units_spl_db(running->sum_squares / running->frames);
-        level.peak_db = units_peak_db(running->peak);
+        const double mean = running->sum / running->frames, dc = follow_dc(meter, mean);
+        double mean_square = running->sum_squares / running->frames - 2 * dc * mean + dc * dc;
+        level.spl_db = units_spl_db(fmax(mean_square, 0));
+        level.peak_db = units_peak_db(fmax(running->greatest - dc, dc - running->least));
         for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
             level.band_db[b] = b < meter->n_bands ? band_db(&sums, b, meter->rate_hz) : NAN;
         sink->take(sink->context, &level);
@@ -101,27 +118,58 @@ static void give(struct meter *meter, const struct level_sink *sink)
     memset(running, 0, sizeof *running);
 }
 
-/* Adds samples of one second: eight running sums, so that the compiler can take several at once. */
-static void add_samples(struct running *running, const float *restrict x, uint32_t n)
+/* Adds at most RUN samples, one by one. */
+static void add_few(struct running *running, const float *x, uint32_t n)
 {
-    double sums[LANES] = {0};
-    float peaks[LANES] = {0};
-    uint32_t i = 0;
-    for (; i + LANES <= n; i += LANES)
-        for (uint32_t j = 0; j < LANES; j++) {
-            float magnitude = fabsf(x[i + j]);
-            sums[j] += (double)magnitude * magnitude;
-            peaks[j] = peaks[j] > magnitude ? peaks[j] : magnitude;
-        }
-    for (; i < n; i++) {
-        sums[0] += (double)x[i] * x[i];
-        peaks[0] = peaks[0] > fabsf(x[i]) ? peaks[0] : fabsf(x[i]);
+    for (uint32_t i = 0; i < n; i++) {
+        running->sum += x[i];
+        running->sum_squares += (double)x[i] * x[i];
+        running->least = x[i] < running->least ? x[i] : running->least;
+        running->greatest = x[i] > running->greatest ? x[i] : running->greatest;
     }
-    for (uint32_t j = 0; j < LANES; j++) {
-        running->sum_squares += sums[j];
-        running->peak = running->peak > peaks[j] ? running->peak : peaks[j];
-    }
+}
+
+/* Adds samples of one second. Sixteen additions in single precision err by 1e-6 at most, 5e-6 dB. */
+static void add_samples(struct running *running, const float *x, uint32_t n)
+{
+    if (running->frames == 0)
+        running->least = running->greatest = x[0];
     running->frames += n;
+    for (; n >= RUN; x += RUN, n -= RUN) {
+        lanes sum = {0}, squares = {0}, least = lanes_load(x), greatest = least;
+        for (uint32_t i = 0; i < RUN; i += LANES) {
+            lanes v = lanes_load(x + i);
+            sum += v;
+            squares += v * v;
+            least = lanes_least(v, least);
+            greatest = lanes_greatest(v, greatest);
+        }
+        running->sum += lanes_sum(sum);
+        running->sum_squares += lanes_sum(squares);
+        for (uint32_t j = 0; j < LANES; j++) {
+            running->least = least[j] < running->least ? least[j] : running->least;
+            running->greatest = greatest[j] > running->greatest ? greatest[j] : running->greatest;
+        }
+    }
+    add_few(running, x, n);
+}
+
+/* Gives a whole hop to the decidecades. */
+static void push_hop(struct meter *meter)
+{
+    float *restrict x = meter->pending;
+    if (!meter->know_offset) {
+        double sum = 0;
+        for (uint32_t i = 0; i < meter->hop; i++)
+            sum += x[i];
+        meter->offset_pa = (float)(sum / meter->hop);
+        meter->know_offset = true;
+    }
+    const float offset = meter->offset_pa;
+    for (uint32_t i = 0; i < meter->hop; i++)
+        x[i] -= offset;
+    decidecades_push(meter->decidecades, x);
+    meter->fill = meter->counted = 0;
 }
 
 /* Counts what is pending and not counted: it lies in one second. Called where a hop or a second ends, so that
@@ -154,8 +202,7 @@ void meter_push(struct meter *meter, const float *pascals, uint32_t n, const str
             count_pending(meter);
         if (meter->fill < meter->hop)
             continue;
-        decidecades_push(meter->decidecades, meter->pending);
-        meter->fill = meter->counted = 0;
+        push_hop(meter);
         while ((meter->next_second + 1) * meter->rate_hz <= decidecades_get_complete(meter->decidecades))
             give(meter, sink);
     }

@@ -1,8 +1,9 @@
 /* Levels of one channel, one a second: SPL and peak from the samples, decidecades (level/decidecades.h).
  *
  * SPL is 10 lg of the mean square, peak 20 lg of the largest magnitude (ISO 18405:2017), both straight from
- * the samples in double precision: a DC offset is part of them, and the peak is that of the samples, not of
- * the wave between them. Seconds are [k rate, (k + 1) rate) in frame numbers.
+ * the samples in double precision, about their running mean: that of the first second after a reset, then an
+ * average over about 8 s, since a converter's offset is no sound. The peak is that of the samples, not of the
+ * wave between them. Seconds are [k rate, (k + 1) rate) in frame numbers.
  *
  * Call order: create; reset at the start and after each gap; push; finish before a reset or at the end;
  * destroy. */

@@ -242,6 +242,23 @@ static void a_click_counts_alike_anywhere(void **state)
     assert_true(worst_low < 0.05);
 }
 
+/* A converter's offset is no sound: the levels are those without it. */
+static void an_offset_is_no_sound(void **state)
+{
+    (void)state;
+    enum { RATE = 48000, N = RATE * 7 / 2 };
+    float *x = tone(RATE, 1000, 3.5);
+    for (int i = 0; i < N; i++)
+        x[i] += 30;
+    struct levels levels = measure_once(RATE, x, N);
+    for (uint32_t i = 0; i < 3; i++) {
+        assert_near(levels.level[i].spl_db, 116.9897, 0.01);
+        assert_near(levels.level[i].peak_db, 120, 0.01);
+        assert_true(levels.level[i].band_db[0] < 60);
+    }
+    free(x);
+}
+
 static void chunks_do_not_matter(void **state)
 {
     (void)state;
@@ -316,7 +333,8 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(a_sine_has_its_level),          cmocka_unit_test(bands_keep_the_class_1_mask),
         cmocka_unit_test(noise_bands_keep_their_spread), cmocka_unit_test(a_click_counts_alike_anywhere),
-        cmocka_unit_test(chunks_do_not_matter),          cmocka_unit_test(short_seconds_and_silence),
+        cmocka_unit_test(an_offset_is_no_sound),         cmocka_unit_test(chunks_do_not_matter),
+        cmocka_unit_test(short_seconds_and_silence),
     };
     return cmocka_run_group_tests_name("meter", tests, NULL, NULL);
 }
