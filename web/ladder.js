@@ -60,9 +60,11 @@ function bar(image, contact, at, y, width) {
   image.append(svg("rect", { class: kind, x: x1, y: y + 18, width: x2 - x1, height: 12, rx: known ? 6 : 0 }));
   if (known) image.append(svg("rect", { class: "notch", x: at.x(contact.distance_p50_m) - 1.5, y: y + 14, width: 3, height: 20 }));
   const where = known ? `${metres(contact.distance_p05_m)} to ${metres(contact.distance_p95_m)}, about ${metres(contact.distance_p50_m)}` : "range unknown";
-  const text = svg("text", { class: "bar_name", x: known && x1 > width / 2 ? x2 : x1, y: y + 12, "text-anchor": known && x1 > width / 2 ? "end" : "start" });
-  text.append(svg("tspan", { class: "strong" }, `${contact.contact} ${contact.group}`));
-  text.append(svg("tspan", { class: "soft" }, `  ${contact.grade ? contact.grade + " · " : ""}${where}`));
+  const name = `${contact.contact} ${contact.group}`, more = `  ${contact.grade ? contact.grade + " · " : ""}${where}`;
+  const x = Math.max(LEFT, Math.min(x1, width - 8 - 7 * (name.length + more.length)));
+  const text = svg("text", { class: "bar_name", x, y: y + 12 });
+  text.append(svg("tspan", { class: "strong" }, name));
+  text.append(svg("tspan", { class: "soft" }, more));
   image.append(text);
   return `contact ${contact.contact}, ${contact.group}${contact.grade ? ", " + contact.grade : ""}: ${where}`;
 }

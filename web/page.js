@@ -196,11 +196,14 @@ export function faults() {
   if (!state) return said;
   const deaf = state.streams.filter((stream) => !stream.hearing);
   if (!still && deaf.length > 0)
-    said.push({ code: "deaf", title: "CANNOT HEAR", text: deaf.map((s) => (s.name || "stream " + s.stream) + ": " + s.health).join("; "), grave: true });
+    said.push({ code: "deaf", title: "CANNOT HEAR", text: deaf.map((s) => (s.name || "stream " + s.stream) + ": " + (s.health || "no sound arrives")).join("; "), grave: true });
   if (!state.recording.recording) said.push({ code: "record", title: "NOT RECORDING", text: state.recording.text, grave: true });
   else if (!still && now - link.committedAt > LATE_MS)
     said.push({ code: "record", title: "NOT RECORDING", text: "No entry is confirmed since " + utc(link.committedS) + " UTC.", grave: true });
-  for (const text of state.faults) said.push({ code: "fault:" + text, title: "FAULT", text, grave: false });
+  for (const text of state.faults) {
+    const already = said.some((fault) => text.startsWith(fault.title)) || (!state.recording.recording && text.endsWith(state.recording.text));
+    if (!already) said.push({ code: "fault:" + text, title: "FAULT", text, grave: false });
+  }
   return said;
 }
 /** "STOP REMAINS", or nothing where no instruction stays in force. */
