@@ -86,8 +86,10 @@ void contact_detect(struct contact *contact, const struct permit *permit, int64_
             continue;
         double p = whereabouts_p_inside(&contact->where, permit->zones[i].radius_m);
         if (!isnan(p)) {
-            if (p >= permit->p_inside_prepare && when_ns > contact->stated_ns[i])
+            if (p >= permit->p_inside_prepare && when_ns > contact->stated_ns[i]) {
+                contact->stated_before_ns[i] = contact->stated_ns[i];
                 contact->stated_ns[i] = when_ns;
+            }
             contact->sure = contact->sure || p >= permit->p_inside_act;
         } else if (policy != UNKNOWN_IGNORE) {
             if (when_ns > contact->assumed_ns[i])
@@ -102,16 +104,20 @@ void contact_place(struct contact *contact, const struct permit *permit, double 
 {
     contact->where = (struct whereabouts){true, distance_m, log_spread};
     contact->where_ns = when_ns;
-    for (uint32_t i = 0; i < permit->n_zones; i++)
-        if (whereabouts_p_inside(&contact->where, permit->zones[i].radius_m) < permit->p_inside_prepare)
-            contact->assumed_ns[i] = -1;
+    for (uint32_t i = 0; i < permit->n_zones; i++) {
+        if (whereabouts_p_inside(&contact->where, permit->zones[i].radius_m) >= permit->p_inside_prepare)
+            continue;
+        contact->assumed_ns[i] = -1;
+        if (contact->stated_ns[i] == when_ns)
+            contact->stated_ns[i] = contact->stated_before_ns[i];
+    }
     contact_detect(contact, permit, when_ns);
 }
 
 void contact_let_go(struct contact *contact)
 {
     for (uint32_t i = 0; i < PERMIT_MAX_ZONES; i++)
-        contact->stated_ns[i] = contact->assumed_ns[i] = -1;
+        contact->stated_ns[i] = contact->stated_before_ns[i] = contact->assumed_ns[i] = -1;
     contact->sure = false;
 }
 
@@ -258,11 +264,14 @@ void contact_describe(const struct contact *contact, const struct permit *permit
     if (!zone)
         snprintf(inside, sizeof inside, ": no zone of the permit is for it");
     else if (clears < 0)
-        snprintf(inside, sizeof inside, ": does not count as inside the %s", zone->name);
+        snprintf(inside, sizeof inside, ": does not count as inside the zone '%s'", zone->name);
     else if (contact_is_question(contact, permit, now_ns))
-        snprintf(inside, sizeof inside, ": the observer is asked whether it is inside the %s", zone->name);
+        snprintf(inside, sizeof inside, ": the observer is asked whether it is inside the zone '%s'",
+                 zone->name);
+    else if (!contact->sure && contact->where.known && !contact->confirmed)
+        snprintf(inside, sizeof inside, ": may be inside the zone '%s'", zone->name);
     else
-        snprintf(inside, sizeof inside, ": counts as inside the %s", zone->name);
+        snprintf(inside, sizeof inside, ": counts as inside the zone '%s'", zone->name);
     snprintf(out, FLOW_TEXT_SIZE, "contact %u, %s, %s%.60s%.150s", contact->number,
              group_text(contact->group), how, where, inside);
 }

@@ -32,6 +32,7 @@ struct contact {
     /* The last detection inside each zone, -1 for none: because a distance says so, or because the permit's
      * policy counts an unknown distance as inside. */
     int64_t stated_ns[PERMIT_MAX_ZONES], assumed_ns[PERMIT_MAX_ZONES];
+    int64_t stated_before_ns[PERMIT_MAX_ZONES]; /* the one before, should the newest be corrected */
     bool sure; /* the last detection was inside by distance (P at least p_inside_act) or by policy */
 
     /* One episode lasts from when it first holds something back until it no longer does. */
@@ -71,7 +72,8 @@ void contact_add_cause(struct contact *contact, const char *id);
 
 /* A detection at when_ns, wherever the contact is thought to be: marks the zones that it counts inside of. */
 void contact_detect(struct contact *contact, const struct permit *permit, int64_t when_ns);
-/* A person says where it was at when_ns. A distance outside a zone ends what was only assumed there. */
+/* A person says where it was at when_ns. A distance outside a zone ends what was only assumed there, and
+ * corrects what was stated for that very moment. */
 void contact_place(struct contact *contact, const struct permit *permit, double distance_m, double log_spread,
                    int64_t when_ns);
 /* Nothing of it counts inside any zone from now on. */

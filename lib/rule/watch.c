@@ -25,7 +25,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->permit = setup->permit;
     watch->run = 1;
     watch->phase = PHASE_OFF;
-    watch->effort.hole_ns = -1;
+    watch->effort.hole_ns = watch->let_go_ns = -1;
     watch->source.said = PHASE_OFF;
     watch->source.said_ns = watch->source.impulse_ns = -1;
     watch->source.soft_start_ns = watch->source.quiet_ns = -1;

@@ -32,12 +32,15 @@ static void need_start(const struct watch *watch, struct wanted *wanted)
         need(wanted, text);
     }
     if (!effort_complete(watch)) {
-        snprintf(text, sizeof text, "a complete pre-watch of %g minutes", watch->permit->pre_watch_minutes);
+        snprintf(text, sizeof text, "a complete pre-watch of %g min", watch->permit->pre_watch_minutes);
         need(wanted, text);
     }
     need(wanted, "a release by a named observer");
     need(wanted, "a soft start");
-    wanted->until_ns = ready_ns < 0 ? -1 : clear_ns > ready_ns ? clear_ns : ready_ns;
+    if (watch->phase == PHASE_POST_WATCH && ready_ns >= 0 && source_break_over_ns(watch) > ready_ns)
+        ready_ns = source_break_over_ns(watch);
+    bool known = ready_ns >= 0 && effort_kept(watch, NULL);
+    wanted->until_ns = !known ? -1 : clear_ns > ready_ns ? clear_ns : ready_ns;
 }
 
 static void ground_contact(const struct watch *watch, struct wanted *wanted, const struct contact *contact)
@@ -46,7 +49,7 @@ static void ground_contact(const struct watch *watch, struct wanted *wanted, con
     const struct permit_zone *zone = contact_zone(contact, watch->permit, watch->now_ns);
     wanted->key.ground = GROUND_CONTACT;
     wanted->key.contact = contact->number;
-    wanted->key.confirmed = contact->confirmed || contact->seen_now;
+    wanted->key.confirmed = contact->confirmed || (contact->seen_now && contact->sure);
     contact_describe(contact, watch->permit, watch->now_ns, text);
     bool or_hold = wanted->key.word == ADVICE_HOLD_POWER && watch->permit->stop_if_possible_else_hold;
     why_reset(&wanted->why, zone ? zone->clause : "", "%s%s",
@@ -112,7 +115,15 @@ static bool is_blind(const struct watch *watch, struct wanted *wanted, enum advi
 static void want_while_sounding(const struct watch *watch, const struct contact *lead, struct wanted *wanted)
 {
     const char *clause = watch->permit->soft_start_clause;
-    if (lead) {
+    enum permit_action unallowed = watch->source.unallowed;
+    if (unallowed > ACTION_LOG && (!lead || contact_wanted(watch, lead) < unallowed)) {
+        ground(wanted, watch, word_of(unallowed), GROUND_UNALLOWED, watch->permit->pre_watch_clause,
+               watch->source.unallowed_why);
+        if (unallowed == ACTION_HOLD)
+            need(wanted, "a release by a named observer");
+        else
+            need_start(watch, wanted);
+    } else if (lead) {
         wanted->key.word = word_of(contact_wanted(watch, lead));
         ground_contact(watch, wanted, lead);
         wanted->until_ns = contact_all_clear_ns(watch);
@@ -149,10 +160,10 @@ static void want_in_break(const struct watch *watch, const struct contact *lead,
         need_start(watch, wanted);
         return;
     }
-    snprintf(text, sizeof text, "the zone is clear: the source may resume while the silence is %s %g minutes",
+    snprintf(text, sizeof text, "the zone is clear: the source may resume while the silence is %s %g min",
              watch->permit->break_limit_resumes ? "at most" : "less than", watch->permit->break_minutes);
     ground(wanted, watch, ADVICE_RESUME, GROUND_BREAK, watch->permit->break_clause, text);
-    wanted->until_ns = source_break_over_ns(watch) / TIME_NS_PER_US * TIME_NS_PER_US;
+    wanted->until_ns = watch->source.quiet_ns + time_from_s(watch->permit->break_minutes * 60);
 }
 
 static void want_ready(const struct watch *watch, struct wanted *wanted)
@@ -232,12 +243,19 @@ static void fill(const struct watch *watch, enum station station, const struct w
     memcpy(advice->causes, wanted->why.causes, sizeof advice->causes);
 }
 
-/* What ended the advice that the new one replaces belongs to its causes. */
+/* What ended the advice that the new one replaces belongs to its reason and causes. */
 static void add_end(const struct watch *watch, const struct advice_key *old, struct wanted *wanted)
 {
-    bool ended = old->ground == GROUND_CONTACT && wanted->key.contact != old->contact;
-    for (uint32_t i = 0; ended && i < watch->let_go.n_causes && i < 3; i++)
-        why_add_cause(&wanted->why, watch->let_go.causes[i]);
+    bool of_contact = (old->ground == GROUND_CONTACT && wanted->key.contact != old->contact) ||
+                      (old->ground == GROUND_UNALLOWED && wanted->key.ground != GROUND_UNALLOWED);
+    if (!of_contact || watch->let_go_ns != watch->now_ns)
+        return;
+    struct why ended = watch->let_go;
+    for (uint32_t i = 0; i < wanted->why.n_causes; i++)
+        why_add_cause(&ended, wanted->why.causes[i]);
+    snprintf(ended.text, sizeof ended.text, "%.150s; %.100s", watch->let_go.text, wanted->why.text);
+    memcpy(ended.clause, wanted->why.clause, sizeof ended.clause);
+    wanted->why = ended;
 }
 
 static void settle_station(struct watch *watch, enum station station)

@@ -96,14 +96,15 @@ void contact_take_call(struct watch *watch, const struct event *event)
 static void let_go(struct watch *watch, struct contact *contact, const char *reason)
 {
     const struct permit_zone *zone = contact_zone(contact, watch->permit, watch->now_ns);
-    bool was_holding = contact->holding;
+    bool held = contact->holding || watch->source.unallowed_contact == contact->number;
     contact_end_episode(contact);
     watch_say_contact(watch, contact);
-    if (!was_holding)
+    if (!held)
         return;
     why_reset(&watch->let_go, zone ? zone->clause : "", "%.250s", reason);
     why_add_cause(&watch->let_go, watch->recent.causes[0]);
     why_add_contact(&watch->let_go, contact);
+    watch->let_go_ns = watch->now_ns;
 }
 
 /* Puts the contact at a distance unless that would loosen a hold on the word of somebody who is not on
@@ -203,6 +204,10 @@ static void dismiss(struct watch *watch, struct contact *contact, const struct n
     snprintf(text, sizeof text, "contact %u, %s, is dismissed by %.60s: %.100s", contact->number,
              group_text(contact->group), note->person, note->text);
     let_go(watch, contact, text);
+    if (watch->source.unallowed_contact == contact->number) {
+        watch->source.unallowed = ACTION_LOG;
+        watch->source.unallowed_contact = 0;
+    }
 }
 
 void contact_take_verdict(struct watch *watch, const struct note *note)
@@ -232,9 +237,10 @@ static void expire_one(struct watch *watch, struct contact *contact)
     bool holds = contact_clears_at_ns(contact, watch->permit, watch->now_ns) >= 0;
     if (contact->holding && !holds) {
         char text[FLOW_TEXT_SIZE];
-        snprintf(text, sizeof text, "contact %u, %s: no detection inside for %g minutes", contact->number,
+        snprintf(text, sizeof text, "contact %u, %s: no detection inside for %g min", contact->number,
                  group_text(contact->group), time_to_s(contact_clearance_ns(contact, watch->permit)) / 60);
         contact->state = CONTACT_CLEARED;
+        source_keep_stop(watch, contact);
         let_go(watch, contact, text);
     } else if (holds && !contact->holding) {
         contact->holding = true; /* what people said of an earlier episode does not speak for this one */

@@ -51,11 +51,15 @@ struct source {
     bool heard;         /* impulses are being heard */
     int64_t impulse_ns; /* the last one */
     char impulse_id[FLOW_ID_SIZE];
+    uint32_t n_unsaid;               /* impulses since the last silence that nobody has spoken for */
     bool heard_in_phase;             /* since the source began to sound */
     bool contradicted;               /* a finding about the present contradiction has been made */
     bool too_long;                   /* a finding about the present soft start has been made */
     int64_t soft_start_ns, quiet_ns; /* when the soft start began, when silence did; -1 */
     enum phase before_break;
+    enum permit_action unallowed; /* what a start that was not allowed calls for */
+    char unallowed_why[FLOW_TEXT_SIZE];
+    uint32_t unallowed_contact; /* whose stop was not followed; 0 for none */
     char job[IMPULSE_JOB_SIZE];
     uint32_t n_impulses;
 };
@@ -73,6 +77,7 @@ enum advice_ground {
     GROUND_DEAF,
     GROUND_UNWATCHED,
     GROUND_SOUND,
+    GROUND_UNALLOWED,
     GROUND_BREAK,
     GROUND_STOPPED,
     GROUND_ENDED
@@ -101,6 +106,7 @@ struct watch {
     char release_id[FLOW_ID_SIZE];
     struct why recent; /* the event that is being taken, as a reason; empty when a timer is */
     struct why let_go; /* why the last contact no longer holds anything back */
+    int64_t let_go_ns; /* and since when */
 
     struct effort effort;
     struct source source;
@@ -157,6 +163,8 @@ void source_settle(struct watch *watch); /* silence, and a soft start that is to
 int64_t source_due_ns(const struct watch *watch);
 /* The first moment at which silence has been too long for a break. */
 int64_t source_break_over_ns(const struct watch *watch);
+/* A stop for a contact ends by time while the source still sounds: it stays, until the source stops. */
+void source_keep_stop(struct watch *watch, const struct contact *contact);
 void source_enter_phase(struct watch *watch, enum phase from, enum phase to); /* findings, times */
 
 /* watch_contact.c */

@@ -20,7 +20,9 @@ void note_without_effect(struct watch *watch, const char *format, ...)
 static void take_release(struct watch *watch, const struct note *note)
 {
     const char *missing;
-    if (!effort_on_watch(watch, note->person))
+    if (effort_on_watch(watch, note->person) && watch->source.unallowed == ACTION_HOLD)
+        watch->source.unallowed = ACTION_LOG; /* late, and the finding stays */
+    else if (!effort_on_watch(watch, note->person))
         note_without_effect(watch, "%.60s is not on watch as an observer and cannot release the start",
                             note->person);
     else if (watch->phase != PHASE_READY)

@@ -8,7 +8,9 @@
 enum target {
     STAY = PHASE_COUNT,
     TO_SAID,    /* the phase that the crew entered */
-    TO_QUIET,   /* break, or shutdown where an order of a contact is in force */
+    TO_QUIET,   /* shutdown where an order of a contact is in force, as before where the start was not
+                   allowed, else break */
+    TO_SILENT,  /* the same, but no break where the silence has been too long for one already */
     TO_RESUMED, /* what the source did before the break */
     TO_BEFORE,  /* off, pre-watch, delay or ready: what the pre-watch and the contacts allow */
     TO_POST = PHASE_POST_WATCH,
@@ -26,7 +28,7 @@ enum target {
 #define IMPULSIVE                                                                                            \
     {                                                                                                        \
         [TRIGGER_SAID_SOUND] = TO_SAID, [TRIGGER_SAID_STOPPED] = TO_QUIET, [TRIGGER_SAID_OFF] = TO_POST,     \
-        [TRIGGER_HEARD] = STAY, [TRIGGER_SILENT] = TO_QUIET, [TRIGGER_BREAK_OVER] = STAY,                    \
+        [TRIGGER_HEARD] = STAY, [TRIGGER_SILENT] = TO_SILENT, [TRIGGER_BREAK_OVER] = STAY,                   \
         [TRIGGER_HELD] = STAY, [TRIGGER_FREE] = STAY, [TRIGGER_ALONE] = STAY, [TRIGGER_WATCH] = STAY         \
     }
 /* Without impulses that could be missed: silence says nothing. */
@@ -108,7 +110,13 @@ static enum phase resolve(const struct watch *watch, unsigned target)
     case TO_SAID:
         return watch->source.said;
     case TO_QUIET:
-        return order_in_force(watch) ? PHASE_SHUTDOWN : PHASE_BREAK;
+        return order_in_force(watch)                  ? PHASE_SHUTDOWN
+               : watch->source.unallowed > ACTION_LOG ? before_sound(watch)
+                                                      : PHASE_BREAK;
+    case TO_SILENT:
+        return watch->now_ns + TIME_NS_PER_US >= source_break_over_ns(watch) && !order_in_force(watch)
+                   ? before_sound(watch)
+                   : resolve(watch, TO_QUIET);
     case TO_RESUMED:
         return watch->source.before_break;
     case TO_BEFORE:
@@ -139,8 +147,13 @@ static void why_ready(const struct watch *watch, struct why *why)
     effort_names(watch, names);
     if (*watch->let_go.text && (watch->phase == PHASE_DELAY || watch->phase == PHASE_SHUTDOWN))
         *why = watch->let_go;
+    else if (watch->phase == PHASE_BREAK)
+        why_reset(why, watch->permit->break_clause,
+                  "the silence was too long for a break, and the watch kept through it stands for the "
+                  "pre-watch: %.120s",
+                  names);
     else
-        why_reset(why, watch->permit->pre_watch_clause, "the pre-watch of %g minutes is complete: %.150s",
+        why_reset(why, watch->permit->pre_watch_clause, "the pre-watch of %g min is complete: %.150s",
                   watch->permit->pre_watch_minutes, names);
 }
 
@@ -152,7 +165,7 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
     if (watch->phase == PHASE_OFF)
         why_reset(why, watch->permit->pre_watch_clause, "the watch is kept: %.200s", names);
     else if (watch->phase == PHASE_BREAK)
-        why_reset(why, watch->permit->break_clause, "the source has been silent for %s %g minutes",
+        why_reset(why, watch->permit->break_clause, "the source has been silent for %s %g min",
                   watch->permit->break_limit_resumes ? "more than" : "at least",
                   watch->permit->break_minutes);
     else if (watch->phase == PHASE_POST_WATCH)

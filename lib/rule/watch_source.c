@@ -124,11 +124,16 @@ void source_take_impulse(struct watch *watch, const struct event *event)
         source->impulse_ns = impulse->time_ns < watch->now_ns ? impulse->time_ns : watch->now_ns;
     flow_id(event->run, event->stream, "impulse", event->counter, source->impulse_id);
     source->n_impulses += impulse->whose == IMPULSE_OURS;
-    if (!source_sounds(watch->phase) && !(quiet_said && late)) {
+    source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + 1;
+    /* One bang is no source, but for a charge. */
+    uint32_t enough = watch->permit->activity == ACTIVITY_EXPLOSIVES ? 1 : 2;
+    if (source->n_unsaid >= enough) {
         if (of_job && watch->phase == PHASE_SHUTDOWN)
             find_during_stop(watch);
         else if (quiet_said)
             find_contradiction(watch, of_job);
+        if (of_job && watch->permit->break_watch != BREAK_WATCH_STANDS)
+            effort_begin_anew(watch);
         struct why why;
         why_reset(&why, watch->permit->soft_start_clause, "impulses of job %.31s are heard", source->job);
         why_add_cause(&why, source->impulse_id);
@@ -175,16 +180,17 @@ static void fall_silent(struct watch *watch)
 {
     struct source *source = &watch->source;
     source->heard = source->contradicted = false;
+    source->n_unsaid = 0;
     if (!source->heard_in_phase || !source_sounds(watch->phase))
         return;
-    int64_t last_ns = source->impulse_ns;
     struct why why;
     why_reset(&why, watch->permit->break_clause, "no impulse has been heard for %g s",
               watch->setup.silence_s);
     why_add_cause(&why, source->impulse_id);
+    source->quiet_ns = source->impulse_ns;
     phase_take(watch, TRIGGER_SILENT, &why);
-    if (!source_sounds(watch->phase))
-        source->quiet_ns = last_ns;
+    if (source_sounds(watch->phase))
+        source->quiet_ns = -1;
 }
 
 void source_settle(struct watch *watch)
@@ -195,11 +201,23 @@ void source_settle(struct watch *watch)
     if (watch->now_ns >= too_long_ns(watch)) {
         source->too_long = true;
         struct why why;
-        why_reset(&why, watch->permit->soft_start_clause, "the soft start has lasted longer than %g minutes",
+        why_reset(&why, watch->permit->soft_start_clause, "the soft start has lasted longer than %g min",
                   watch->permit->soft_start_max_minutes);
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, "soft start too long", "firm", &why);
     }
+}
+
+void source_keep_stop(struct watch *watch, const struct contact *contact)
+{
+    struct source *source = &watch->source;
+    if (contact->order != ACTION_STOP || !source_sounds(watch->phase) || source->unallowed == ACTION_STOP)
+        return;
+    source->unallowed = ACTION_STOP;
+    source->unallowed_contact = contact->number;
+    snprintf(source->unallowed_why, sizeof source->unallowed_why,
+             "the stop for contact %u, %s, was not followed: the source still sounds", contact->number,
+             group_text(contact->group));
 }
 
 /* The source begins to sound: was it allowed to? */
@@ -209,8 +227,10 @@ static void judge_start(struct watch *watch, enum phase from)
     const struct contact *holder = contact_holder(watch, true);
     struct why why;
     const char *code = NULL, *missing = "";
+    enum permit_action unallowed = ACTION_STOP;
     if (from == PHASE_BREAK) {
         code = effort_kept(watch, &missing) ? NULL : "resumed without a watch";
+        unallowed = ACTION_LOG;
         why_reset(&why, permit->break_clause, "the source resumes after a break and %s", missing);
     } else if (from == PHASE_DELAY || from == PHASE_SHUTDOWN || (from == PHASE_READY && holder)) {
         code = from == PHASE_SHUTDOWN ? "start during a stop" : "start during a delay";
@@ -222,14 +242,17 @@ static void judge_start(struct watch *watch, enum phase from)
             why_add_contact(&why, holder);
     } else if (from == PHASE_READY) {
         code = *watch->released_by ? NULL : "start without release";
+        unallowed = ACTION_HOLD; /* all is ready: a release makes it good */
         why_reset(&why, permit->pre_watch_clause, "the source starts and no observer has released the start");
     } else {
         code = "start without a complete pre-watch";
-        why_reset(&why, permit->pre_watch_clause, "the source starts after %.1f of %g minutes of pre-watch",
+        why_reset(&why, permit->pre_watch_clause, "the source starts after %.1f of %g min of pre-watch",
                   time_to_s(watch->effort.credit_ns) / 60, permit->pre_watch_minutes);
     }
     if (!code)
         return;
+    watch->source.unallowed = unallowed;
+    memcpy(watch->source.unallowed_why, why.text, sizeof watch->source.unallowed_why);
     why_add_cause(&why, watch->phase_id);
     watch_say_finding(watch, code, "firm", &why);
 }
@@ -244,7 +267,7 @@ static void judge_full_power(struct watch *watch, enum phase from)
     int64_t lasted = watch->now_ns - source->soft_start_ns;
     struct why why;
     if (after_soft_start && lasted < time_from_s(permit->soft_start_min_minutes * 60)) {
-        why_reset(&why, permit->soft_start_clause, "full power after %.1f of at least %g minutes",
+        why_reset(&why, permit->soft_start_clause, "full power after %.1f of at least %g min",
                   time_to_s(lasted) / 60, permit->soft_start_min_minutes);
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, "soft start too short", "firm", &why);
@@ -260,6 +283,10 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
 {
     struct source *source = &watch->source;
     bool begins = source_sounds(to) && !source_sounds(from), ends = source_sounds(from) && !source_sounds(to);
+    if (begins || ends) {
+        source->unallowed = ACTION_LOG;
+        source->unallowed_contact = 0;
+    }
     if (begins && to != PHASE_DRILLING && to != PHASE_LINE_TURN)
         judge_start(watch, from);
     if (to == PHASE_FULL_POWER)
@@ -276,7 +303,8 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
             effort_begin_anew(watch);
     }
     if (ends) {
-        source->quiet_ns = watch->now_ns;
+        if (source->quiet_ns < 0)
+            source->quiet_ns = watch->now_ns;
         source->before_break = from;
         source->heard_in_phase = false;
     }
