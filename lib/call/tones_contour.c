@@ -7,13 +7,19 @@
 
 static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
 {
-    return history + (size_t)tracer_row(tracer, frame) * tracer->n_bins;
+    return history + (size_t)tracer_row(tracer, frame) * tracer->stride;
 }
 
 /* Frequency of the peak near bin k: parabola through the logarithms of three cells (Smith and Serra 1987). */
 static double refine_hz(const struct tracer *tracer, const float *power, uint32_t k)
 {
     double shift = 0;
+    for (uint32_t i = 0; i < FLANK; i++) {
+        if (k > 0 && power[k - 1] > power[k])
+            k--;
+        else if (k + 1 < tracer->n_bins && power[k + 1] > power[k])
+            k++;
+    }
     if (k > 0 && k + 1 < tracer->n_bins) {
         double a = log(power[k - 1] + 1e-30), b = log(power[k] + 1e-30), c = log(power[k + 1] + 1e-30);
         double bend = a - 2 * b + c;
@@ -59,11 +65,29 @@ static uint32_t follow_back(struct tracer *tracer, const struct path *path)
     int k = (int)path->best_bin;
     for (uint64_t frame = path->last_rise;; frame--) {
         tracer->trail[n++] = (uint32_t)k;
-        int step = tracer->history_step[(size_t)tracer_row(tracer, frame) * tracer->n_bins + (uint32_t)k];
+        int step = tracer->history_step[(size_t)tracer_row(tracer, frame) * tracer->stride + (uint32_t)k];
         if (step == STEP_START || frame == 0 || n + tracer->gap + 2 >= tracer->n_history)
             return n;
         k -= step;
     }
+}
+
+static double cell_power(const struct tracer *tracer, uint64_t last, uint32_t i)
+{
+    return row_of(tracer->history_power, tracer, last - i)[tracer->trail[i]];
+}
+
+/* A loud call is felt in spectra that only touch its beginning: cells far below the next few are dropped. */
+static uint32_t trim_start(const struct tracer *tracer, uint64_t last, uint32_t n)
+{
+    while (n > 4) {
+        double next = fmax(cell_power(tracer, last, n - 2),
+                           fmax(cell_power(tracer, last, n - 3), cell_power(tracer, last, n - 4)));
+        if (cell_power(tracer, last, n - 1) >= TAIL_SHARE * next)
+            break;
+        n--;
+    }
+    return n;
 }
 
 static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
@@ -131,8 +155,8 @@ static void measure_course(const struct tracer *tracer, uint64_t last, uint32_t 
 
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
 {
-    uint32_t n = follow_back(tracer, path);
     uint64_t last = path->last_rise;
+    uint32_t n = trim_start(tracer, last, follow_back(tracer, path));
     *out = (struct contour){.n_cells = n, .score = path->best, .bin_hz = tracer->bin_hz};
     out->start_frame = tracer->centre[tracer_row(tracer, last - (n - 1))] - tracer->hop / 2;
     out->end_frame = tracer->centre[tracer_row(tracer, last)] + tracer->hop / 2;

@@ -6,10 +6,12 @@
 #include "call/tones_trace.h"
 #include "dsp/background.h"
 #include "dsp/spectrum.h"
+#include <string.h>
 
 /* Reverberation: what has fallen this far below a path's recent level is its tail. A tail of shallow water
  * decays by a few dB a second: 7 on a recording of song in a bay. */
-#define TAIL_SHARE 0.063F /* 12 dB */
+#define FLANK_GAIN (-1.5F) /* of a cell that is only the tail of its path, or the flank of a louder one */
+#define TAIL_SHARE 0.063F  /* 12 dB */
 #define TAIL_FALL_DB_S 6.0
 #define SMOOTHING 0.33F /* of power, a frame */
 
@@ -29,7 +31,7 @@ struct path {
     uint32_t tip_bin;
 };
 
-/* One frame's cells of the recursion; [n_bins + 2 * MAX_STEP + TILE] with an empty margin of MAX_STEP in
+/* One frame's cells of the recursion; [stride + 2 * MAX_STEP] with an empty margin of MAX_STEP in
  * front. */
 struct cells {
     float *score, *slope;
@@ -44,6 +46,7 @@ struct tracer {
     float tail_fall;    /* what a recent level keeps in a frame */
     double bin_hz, hop; /* of the spectrum; hop in input frames */
     uint32_t n, n_bins, first_bin;
+    uint32_t stride;        /* n_bins, rounded up to a multiple of TILE */
     uint32_t max_step, gap; /* bins a frame; frames that are bridged */
     uint32_t n_history;
 
@@ -52,19 +55,54 @@ struct tracer {
     uint64_t origin;    /* input frame of the first sample since the last gap */
     uint64_t n_shifted; /* samples that have left `held` since then */
     uint32_t n_held;
-    float *held, *limited, *power;
+    float *held, *limited;
+    float *power_store,
+        *power; /* power[n / 2 + 1] in the middle of a store with margins of TILE and 2 * TILE */
 
     uint64_t frame;                                   /* number of the newest frame plus 1 */
-    float *level, *floor, *smooth, *occupancy, *gain; /* [n_bins] */
-    float *best, *step;                               /* [n_bins] of the recursion */
+    float *level, *floor, *smooth, *occupancy, *gain; /* [stride] */
+    float *tail;        /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
+    float *best, *step; /* [n_bins] of the recursion */
     struct cells now, before;
     struct path paths[MAX_PATHS];
 
     double *centre;       /* [n_history]: input frame of each frame's middle */
-    int8_t *history_step; /* [n_history][n_bins] */
+    int8_t *history_step; /* [n_history][stride] */
     float *history_power, *history_snr;
     uint32_t *trail; /* [n_history]: bins of the path being traced back, the last first */
 };
+
+/* Four floats that the compiler keeps in one register (an extension of GCC and Clang): comparisons keep a
+ * plain loop from becoming one. */
+typedef float four __attribute__((vector_size(16)));
+typedef int32_t four_masks __attribute__((vector_size(16)));
+
+static inline four load(const float *from)
+{
+    four out;
+    memcpy(&out, from, sizeof out);
+    return out;
+}
+
+static inline void store(float *to, four from)
+{
+    memcpy(to, &from, sizeof from);
+}
+
+static inline four choose(four_masks mask, four yes, four no)
+{
+    return (four)((mask & (four_masks)yes) | (~mask & (four_masks)no));
+}
+
+static inline four all(float x)
+{
+    return (four){x, x, x, x};
+}
+
+static inline four larger(four a, four b)
+{
+    return choose(a > b, a, b);
+}
 
 static inline uint32_t tracer_row(const struct tracer *tracer, uint64_t frame)
 {

@@ -67,7 +67,7 @@ static bool is_harmonic(const struct contour *a, const struct contour *b)
  * no multiple can be told (at the tenth harmonic any frequency is near one). */
 static bool is_overtone(const struct contour *weak, const struct contour *strong)
 {
-    return overlap(weak, strong) >= CONTAINED * duration(weak) &&
+    return overlap(weak, strong) >= HARMONIC_OVERLAP * duration(weak) &&
            weak->mean_square < OVERTONE_WEAKER * strong->mean_square && weak->low_hz > strong->high_hz;
 }
 
@@ -168,7 +168,7 @@ static void add_member(struct sound *sound, const struct contour *c)
     sound->low_hz = first ? c->low_hz : fmin(sound->low_hz, c->low_hz);
     sound->high_hz = first ? c->high_hz : fmax(sound->high_hz, c->high_hz);
     sound->strongest = fmax(sound->strongest, c->mean_square);
-    sound->energy += length * c->mean_square;
+    sound->energy[c->tracer] += length * c->mean_square;
     sound->snr_weight += length * c->snr;
     sound->weight += length;
     if (sound->n_members < JUDGE_MAX_MEMBERS) {
@@ -316,6 +316,9 @@ bool judge_is_due(const struct judge *judge, double frame)
 static void give(const struct judge *judge, struct sound *sound, uint64_t known_frame,
                  const struct found_sink *sink)
 {
+    double energy = 0;
+    for (uint32_t i = 0; i < CATALOGUE_MAX_CLASSES; i++)
+        energy = fmax(energy, sound->energy[i]);
     struct found_call found = {.class_index = best_class(judge, sound),
                                .start_frame = sound->start_frame,
                                .end_frame = sound->end_frame,
@@ -323,7 +326,7 @@ static void give(const struct judge *judge, struct sound *sound, uint64_t known_
                                .low_hz = sound->low_hz,
                                .high_hz = sound->high_hz,
                                .snr_db = 10 * log10(sound->snr_weight / sound->weight),
-                               .mean_square_pa2 = sound->energy / (sound->end_frame - sound->start_frame)};
+                               .mean_square_pa2 = energy / (sound->end_frame - sound->start_frame)};
     sound->given = true;
     sink->take(sink->context, &found);
 }

@@ -23,7 +23,8 @@ struct judged_class {
 struct sound {
     bool used, given;
     double start_frame, end_frame, low_hz, high_hz;
-    double energy, snr_weight, weight, strongest; /* sums over its contours; the largest mean square */
+    double snr_weight, weight, strongest; /* sums over its contours; the largest mean square */
+    double energy[CATALOGUE_MAX_CLASSES]; /* by tracer: each hears all of the sound */
     double points[CATALOGUE_MAX_CLASSES];
     uint32_t n_members;
     struct contour members[JUDGE_MAX_MEMBERS];

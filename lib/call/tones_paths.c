@@ -11,28 +11,6 @@
 #define GAP_COST 12.0F   /* fall of the score that ends a path: a gap of about 8 frames */
 #define SLOPE_GAIN 0.35F /* how fast the slope follows */
 
-/* Four floats that the compiler keeps in one register (an extension of GCC and Clang): comparisons keep a
- * plain loop from becoming one. */
-typedef float four __attribute__((vector_size(16)));
-typedef int32_t four_masks __attribute__((vector_size(16)));
-
-static four load(const float *from)
-{
-    four out;
-    memcpy(&out, from, sizeof out);
-    return out;
-}
-
-static four choose(four_masks mask, four yes, four no)
-{
-    return (four)((mask & (four_masks)yes) | (~mask & (four_masks)no));
-}
-
-static four all(float x)
-{
-    return (four){x, x, x, x};
-}
-
 /* For four cells from k on the best path that leads to each; 0 where it is better to begin there. */
 static void find_best(struct tracer *tracer, uint32_t k)
 {
@@ -54,8 +32,6 @@ static void find_best(struct tracer *tracer, uint32_t k)
     memcpy(tracer->best + k, &best, sizeof best);
     memcpy(tracer->step + k, &chosen, sizeof chosen);
 }
-
-#define TAIL_GAIN (-1.5F) /* of a cell that is only the tail of its path */
 
 /* The cell begins a path, or goes on from the one that the best path comes from. */
 static void begin_cell(struct tracer *tracer, uint32_t at, float power)
@@ -86,9 +62,9 @@ static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
     const int step = (int)tracer->step[k];
     const float power = tracer->power[tracer->first_bin + k];
     float gain = tracer->gain[k];
-    if (step != STEP_START && gain > TAIL_GAIN &&
+    if (step != STEP_START && gain > FLANK_GAIN &&
         power < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)])
-        gain = TAIL_GAIN;
+        gain = FLANK_GAIN;
     const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + gain;
     tracer->now.score[at] = score > 0 ? score : 0;
     tracer->now.path[at] = NO_PATH;
@@ -101,12 +77,13 @@ static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
 static void step_cells(struct tracer *tracer)
 {
     const float ceiling = (float)tracer->setup.ceiling;
-    int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
+    int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     for (uint32_t k = 0; k < tracer->n_bins; k += TILE)
         find_best(tracer, k);
     for (uint32_t k = 0; k < tracer->n_bins; k++) {
         step_cell(tracer, k, ceiling);
         steps[k] = (int8_t)tracer->step[k];
+        tracer->tail[k] = tracer->now.path[k + MAX_STEP] == NO_PATH ? 0 : TAIL_SHARE;
     }
 }
 

@@ -6,6 +6,8 @@
 
 #define DESIGN_SNR 5.0F /* of a cell, for which the likelihood ratio is made: near the weakest of use */
 #define MAX_GAIN 5.0F   /* of one cell: a single loud frame says little about a tone */
+#define NEAR 3          /* bins over which a tone leaks (Hann) ... */
+#define LEAK_SHARE 0.1F /* ... with at most this share of its power outside the two bins beside it */
 #define OCCUPANCY_S 30
 #define OCCUPANCY_SNR 4.0F
 #define TRANSIENT_LIMIT 5.0F /* times the frame's level; with the power of 6 as Gillespie et al. 2013 */
@@ -38,6 +40,7 @@ static void choose_bins(struct tracer *tracer)
     tracer->n_bins = last >= tracer->first_bin ? last - tracer->first_bin + 1 : 0;
     double step = ceil(setup->max_rate_hz_s / tracer->frame_rate / tracer->bin_hz);
     tracer->max_step = (uint32_t)fmin(fmax(step, 1), MAX_STEP);
+    tracer->stride = (tracer->n_bins + TILE - 1) / TILE * TILE;
     tracer->tail_fall = (float)pow(10, -TAIL_FALL_DB_S / 10 / tracer->frame_rate);
     tracer->n_history = (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + 4;
 }
@@ -72,17 +75,18 @@ static void free_cells(struct cells *cells)
 
 static bool make_arrays(struct tracer *tracer)
 {
-    size_t k = tracer->n_bins, history = tracer->n_history;
+    size_t k = tracer->stride, history = tracer->n_history;
     float **const of_bins[] = {&tracer->level, &tracer->floor, &tracer->smooth, &tracer->occupancy,
-                               &tracer->gain,  &tracer->best,  &tracer->step};
+                               &tracer->gain,  &tracer->tail,  &tracer->best,   &tracer->step};
     bool good = true;
     for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
-        good = (*of_bins[i] = calloc(k + TILE, sizeof(float))) && good;
-    good = make_cells(&tracer->now, k + 2 * MAX_STEP + TILE) && good;
-    good = make_cells(&tracer->before, k + 2 * MAX_STEP + TILE) && good;
+        good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
+    good = make_cells(&tracer->now, k + 2 * MAX_STEP) && good;
+    good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
     good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
     good = (tracer->limited = calloc(tracer->n, sizeof(float))) && good;
-    good = (tracer->power = calloc(tracer->n / 2 + 1, sizeof(float))) && good;
+    good = (tracer->power_store = calloc(tracer->n / 2 + 1 + 3 * TILE, sizeof(float))) && good;
+    tracer->power = tracer->power_store ? tracer->power_store + TILE : NULL;
     good = (tracer->centre = calloc(history, sizeof *tracer->centre)) && good;
     good = (tracer->history_step = calloc(history * k, 1)) && good;
     good = (tracer->history_power = calloc(history * k, sizeof(float))) && good;
@@ -127,9 +131,10 @@ void tracer_destroy(struct tracer *tracer)
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
     void *const arrays[] = {
-        tracer->level,  tracer->floor, tracer->smooth,       tracer->occupancy,     tracer->gain,
-        tracer->best,   tracer->step,  tracer->held,         tracer->limited,       tracer->power,
-        tracer->centre, tracer->trail, tracer->history_step, tracer->history_power, tracer->history_snr};
+        tracer->level,   tracer->floor,        tracer->smooth,        tracer->occupancy,
+        tracer->gain,    tracer->best,         tracer->step,          tracer->held,
+        tracer->limited, tracer->power_store,  tracer->tail,          tracer->centre,
+        tracer->trail,   tracer->history_step, tracer->history_power, tracer->history_snr};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);
@@ -151,23 +156,38 @@ static void limit_transients(const float *in, float *out, uint32_t n)
     }
 }
 
-/* From power to log-likelihood ratios, over the background or the tail of a path that has just been there. */
+/* The highest power within three bins of four cells. */
+static four loudest_near(const float *power)
+{
+    four loudest = load(power - NEAR);
+    for (int d = -NEAR + 1; d <= NEAR; d++)
+        loudest = larger(loudest, load(power + d));
+    return loudest;
+}
+
+/* From power to log-likelihood ratios, over the background or the tail of a path that has just been there. A
+ * cell far below one beside it holds only what leaks from that. */
 static void weigh_cells(struct tracer *tracer)
 {
-    const float *power = tracer->power + tracer->first_bin;
-    const float remember = (float)(1 / (OCCUPANCY_S * tracer->frame_rate));
-    const float slope = DESIGN_SNR / (1 + DESIGN_SNR), offset = logf(1 + DESIGN_SNR);
-    float *snr = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->n_bins;
-    for (uint32_t k = 0; k < tracer->n_bins; k++) {
-        float level = tracer->level[k] > tracer->floor[k] ? tracer->level[k] : tracer->floor[k];
-        float gain = slope * power[k] / level - offset;
-        tracer->gain[k] = gain < MAX_GAIN ? gain : MAX_GAIN;
-        snr[k] = power[k] / tracer->level[k];
-        tracer->occupancy[k] += ((snr[k] > OCCUPANCY_SNR ? 1 : 0) - tracer->occupancy[k]) * remember;
-        tracer->smooth[k] += (power[k] - tracer->smooth[k]) * SMOOTHING;
-        float tail = tracer->before.path[k + MAX_STEP] == NO_PATH ? 0 : tracer->smooth[k] * TAIL_SHARE;
-        float old = tracer->floor[k] * tracer->tail_fall;
-        tracer->floor[k] = tail > old ? tail : old;
+    const four slope = all(DESIGN_SNR / (1 + DESIGN_SNR)), offset = all(logf(1 + DESIGN_SNR));
+    const four remember = all((float)(1 / (OCCUPANCY_S * tracer->frame_rate)));
+    float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
+        const four power = load(tracer->power + tracer->first_bin + k);
+        const four leak = all(LEAK_SHARE) * loudest_near(tracer->power + tracer->first_bin + k);
+        const four level = load(tracer->level + k), snr = power / level;
+        four occupancy = load(tracer->occupancy + k), smooth = load(tracer->smooth + k);
+        four floor = load(tracer->floor + k);
+        four gain = slope * power / larger(level, floor) - offset;
+        gain = choose(gain > all(MAX_GAIN), all(MAX_GAIN), gain);
+        gain = choose((power < leak) & (gain > all(FLANK_GAIN)), all(FLANK_GAIN), gain);
+        store(tracer->gain + k, gain);
+        store(snrs + k, snr);
+        occupancy += (choose(snr > all(OCCUPANCY_SNR), all(1), all(0)) - occupancy) * remember;
+        store(tracer->occupancy + k, occupancy);
+        smooth += (power - smooth) * all(SMOOTHING);
+        store(tracer->smooth + k, smooth);
+        store(tracer->floor + k, larger(smooth * load(tracer->tail + k), floor * all(tracer->tail_fall)));
     }
 }
 
@@ -177,7 +197,7 @@ static void take_frame(struct tracer *tracer, const struct trace_sink *sink)
     spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
     uint32_t row = tracer_row(tracer, tracer->frame);
     const float *power = tracer->power + tracer->first_bin;
-    memcpy(tracer->history_power + (size_t)row * tracer->n_bins, power, tracer->n_bins * sizeof *power);
+    memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
     double samples = (double)tracer->n_shifted + (tracer->n - 1) / 2.0;
     tracer->centre[row] = (double)tracer->origin + samples * tracer->setup.factor - tracer->setup.late_frames;
     bool ready = background_is_ready(tracer->background);
