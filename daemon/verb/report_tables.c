@@ -101,7 +101,7 @@ static const char advice_sql[] = "SELECT " WHEN(
              " a.advice || CASE WHEN a.confirmed OR a.station = 'observer' THEN '' ELSE ' (not yet "
              "confirmed)' END,"
              " a.reason, a.clause, trim(coalesce(" CLOCK(
-                 "a.until") ", '') || coalesce(' ' || a.requires, '')),"
+                 "a.until") ", '') || coalesce(char(10) || a.requires, ''), char(10)),"
                             " (SELECT group_concat(n.answer || ' by ' || coalesce(n.person, '?') || "
                             "coalesce(', ' || n.station, '')"
                             " || ' at ' || " CLOCK("n.utc") " || ', ' || printf('%.0f', " BETWEEN(
@@ -202,12 +202,12 @@ const struct sheet_table report_tables[] = {
     {.title = "Runs",
      .remark = "One life of the program each. Between two runs nothing was heard: the outage.",
      .empty = "The ledger holds no run.",
-     .heads = {"#run", "what", "from", "to", "#lasted", "#outage before", "start known from", "heard"},
+     .heads = {"#run", "what", "@from", "@to", "#lasted", "#outage before", "start known from", "heard"},
      .sql = runs_sql},
     {.title = "Effort: who watched when",
      .remark = "From the sign-on to the sign-off as they were entered.",
      .empty = "Nobody signed on.",
-     .heads = {"person", "watch", "station", "from", "to", "#time"},
+     .heads = {"person", "watch", "station", "@from", "@to", "#time"},
      .sql = people_sql},
     {.title = "Effort: what was heard",
      .remark =
@@ -225,24 +225,24 @@ const struct sheet_table report_tables[] = {
     {.title = "Advice and answers",
      .remark = "Who was advised what and when, and how they answered.",
      .empty = "No advice was given.",
-     .heads = {"UTC", "station", "advice", "why", "clause", "until", "answers"},
+     .heads = {"@UTC", "station", "advice", "why", "clause", "until", "answers"},
      .sql = advice_sql},
     {.title = "Phases",
      .empty = "No phase was recorded.",
-     .heads = {"UTC", "phase", "why", "clause", "job"},
+     .heads = {"@UTC", "phase", "why", "clause", "job"},
      .sql = phases_sql},
     {.title = "Contacts",
      .remark = "As each last stood; its grade is the strongest it had. Distances from the source: the "
                "median, and the "
                "range that holds nine of ten.",
      .empty = "There was no contact.",
-     .heads = {"#contact", "group", "grade", "from", "to", "#calls", "#distance m", "#between m",
+     .heads = {"#contact", "group", "grade", "@from", "@to", "#calls", "#distance m", "#between m",
                "#P(inside)", "ended as"},
      .sql = contacts_sql},
     {.title = "What people entered",
      .remark = "In the order in which the watch took it.",
      .empty = "Nothing was entered.",
-     .heads = {"UTC", "what", "person", "details"},
+     .heads = {"@UTC", "what", "person", "details"},
      .sql = notes_sql},
     {.title = "Impulses of the source and of others",
      .remark = "SEL in dB re 1 uPa2 s, peak in dB re 1 uPa; of a channel without calibration relative, in dB "
@@ -250,17 +250,17 @@ const struct sheet_table report_tables[] = {
                "scale.",
      .empty = "No impulse was measured.",
      .heads = {"job", "whose", "#stream", "#channel", "#count", "#max SEL", "#median SEL", "#max peak",
-               "from", "to", "marks"},
+               "@from", "@to", "marks"},
      .sql = impulses_sql},
     {.title = "Findings",
      .remark = "Departures from the permit that the sound or the entries show.",
      .empty = "None.",
-     .heads = {"UTC", "grade", "code", "what", "clause", "job"},
+     .heads = {"@UTC", "grade", "code", "what", "clause", "job"},
      .sql = findings_sql},
     {.title = "Health",
      .remark = "What was not well.",
      .empty = "Nothing was reported.",
-     .heads = {"UTC", "#stream", "what"},
+     .heads = {"@UTC", "#stream", "what"},
      .sql = health_sql},
     {.title = "Calibration",
      .empty = "No calibration was recorded: every level is relative.",

@@ -59,9 +59,9 @@ static void open_table(struct table_state *state)
     struct text *html = &state->sheet->html;
     text_append(html, "<table><thead><tr>");
     for (int i = 0; state->table->heads[i]; i++) {
-        bool number = state->table->heads[i][0] == '#';
-        text_append(html, number ? "<th class=\"n\">" : "<th>");
-        sheet_text(state->sheet, state->table->heads[i] + number);
+        const char *head = state->table->heads[i];
+        text_append(html, *head == '#' ? "<th class=\"n\">" : "<th>");
+        sheet_text(state->sheet, head + (*head == '#' || *head == '@'));
         text_append(html, "</th>");
     }
     text_append(html, "</tr></thead><tbody>\n");
@@ -75,7 +75,8 @@ static enum status take_row(void *context, int n, const char *const *columns)
         open_table(state);
     text_append(html, "<tr>");
     for (int i = 0; i < n && state->table->heads[i]; i++) {
-        text_append(html, state->table->heads[i][0] == '#' ? "<td class=\"n\">" : "<td>");
+        char mark = state->table->heads[i][0];
+        text_append(html, mark == '#' ? "<td class=\"n\">" : mark == '@' ? "<td class=\"t\">" : "<td>");
         sheet_text(state->sheet, columns[i]);
         text_append(html, "</td>");
     }

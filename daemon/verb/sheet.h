@@ -19,8 +19,8 @@ struct sheet_table {
     const char *title;
     const char *remark; /* a sentence under the title, or NULL */
     const char *empty;  /* what to say when there is no row */
-    const char
-        *heads[SHEET_MAX_COLUMNS + 1]; /* one a column of the query, closed by NULL; "#name": numbers */
+    /* One a column of the query, closed by NULL; "#name": numbers, "@name": times. */
+    const char *heads[SHEET_MAX_COLUMNS + 1];
     const char *sql;
 };
 
