@@ -1,0 +1,52 @@
+/* What the files of the scenario player share. */
+#ifndef SUPPORT_SCENARIO_INNER_H
+#define SUPPORT_SCENARIO_INNER_H
+
+#include "rule/watch.h"
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#define LINE_SIZE 512
+#define MAX_PENDING 64
+
+struct player {
+    const char *path;
+    unsigned line;
+    bool transcript, failed;
+    char *problem;
+    size_t problem_size;
+    struct watch_setup setup;
+    struct watch *watch;
+    struct outcome_sink sink;
+    uint32_t run;
+    uint64_t counters[8];
+    int64_t now_ns;
+    unsigned n_outcomes;
+    /* phase, advice and finding outcomes that no line has expected yet */
+    unsigned n_pending;
+    struct outcome pending[MAX_PENDING];
+    int64_t next_impulse_ns, impulse_step_ns, impulse_until_ns; /* step 0: none */
+};
+
+/* Keeps the first thing that went wrong, with file and line. */
+void player_complain(struct player *player, const char *format, ...) __attribute__((format(printf, 2, 3)));
+/* "1:02:03", "1:02:03.500"; "+" behind it is a microsecond more. */
+void player_clock_text(int64_t ns, char out[32]);
+/* Reads the same; gives where the rest begins, NULL when it is none. */
+const char *player_read_clock(const char *text, int64_t *out_ns);
+/* The rest of text after a prefix, NULL where it has another beginning. */
+const char *player_after(const char *text, const char *prefix);
+/* An outcome in the words of the file. */
+void player_outcome_text(const struct outcome *outcome, char *out, size_t size);
+
+/* scenario_events.c: what happens */
+void player_pass_to(struct player *player, int64_t to_ns); /* time, and the blows that fall meanwhile */
+void player_restart(struct player *player, const char *text, int64_t at_ns);
+void player_event(struct player *player, const char *text);
+
+/* scenario_expect.c: what must follow */
+void player_expect(struct player *player, int64_t at_ns, const char *text);
+void player_check(struct player *player, const char *text);
+
+#endif
