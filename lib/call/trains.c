@@ -9,7 +9,8 @@
 #define RING 1024 /* pulses remembered */
 #define LINKS 8   /* chains kept for each pulse */
 #define MAX_OPEN 16
-#define MAX_STEP 3           /* intervals between neighbours of a chain: two missed pulses */
+#define MAX_STEP 3 /* intervals between neighbours of a chain: two missed pulses */
+#define GATE_DEVIATIONS 2.5
 #define DETECTED 0.8         /* chance that a pulse of a train is found at all */
 #define LEVEL_DEVIATION_DB 4 /* between neighbours; a beam that sweeps past changes it slowly */
 #define LEVEL_GATE_DB 12     /* no neighbours beyond */
@@ -30,6 +31,9 @@
 #define MIN_PIECE 3
 #define HIDDEN UINT32_MAX
 
+/* A train is either steady or free in its rhythm; a chain is scored as both. */
+enum { NARROW, WIDE };
+
 /* A chain that ends with this pulse, by its last pair. */
 struct link {
     uint64_t previous; /* number of the pulse before */
@@ -39,9 +43,10 @@ struct link {
     uint32_t steps;     /* intervals in the last pair */
     double ln_interval; /* of the last pair, per step, s */
     double ln_ratio;    /* d of the last pair */
-    double gain;        /* what the last pair added to the score */
-    double score;       /* sum of ln densities, the rate of stray pulses left out */
-    double rank;        /* score at the common rate: which chains are kept */
+    double gain;        /* what the last pair added, at best */
+    double score[2];    /* sum of ln densities, the rate of stray pulses left out, for either spread */
+    double ln_rates;    /* sum of ln of the common rate, to compare chains by */
+    double rank;        /* the better score less ln_rates: which chains are kept */
 };
 
 struct node {
@@ -65,8 +70,9 @@ struct trains {
     struct call_class call_class;
     double rate_hz;
     struct noise_rate noise;
-    double ln_narrow, ln_wide, narrow, wide; /* the two normal densities of d: ln of the peaks, deviations */
-    double ln_steps[MAX_STEP + 1];           /* ln p_d (1 - p_d)^(m - 1) */
+    double all_noise;                /* pulses a second that noise gives at min_snr_db */
+    double ln_peak[2], deviation[2]; /* of ln(interval ratio): a quarter of max_jitter, and max_jitter */
+    double ln_steps[MAX_STEP + 1];   /* ln p_d (1 - p_d)^(m - 1) */
     double ln_m[MAX_STEP + 1];
     double ln_range;           /* ln of ln(max / min interval) */
     double rate_above[LEVELS]; /* running, of pulses at each level or more, a second */
@@ -82,6 +88,11 @@ struct trains {
 static struct node *node_of(const struct trains *trains, uint64_t number)
 {
     return &trains->ring[number % RING];
+}
+
+static double noise_rate(const struct trains *trains, double snr)
+{
+    return trains->noise.get(trains->noise.context, snr);
 }
 
 static bool remembered(const struct trains *trains, uint64_t number)
@@ -104,10 +115,11 @@ enum status trains_create(const struct call_class *call_class, double rate_hz, s
     trains->call_class = *call_class;
     trains->rate_hz = rate_hz;
     trains->noise = noise;
-    trains->wide = shape->max_jitter;
-    trains->narrow = shape->max_jitter / 4;
-    trains->ln_wide = -log(2 * sqrt(2 * M_PI) * trains->wide);
-    trains->ln_narrow = -log(2 * sqrt(2 * M_PI) * trains->narrow);
+    trains->all_noise = noise_rate(trains, units_power_ratio(shape->min_snr_db));
+    trains->deviation[NARROW] = shape->max_jitter / 4;
+    trains->deviation[WIDE] = shape->max_jitter;
+    for (int spread = NARROW; spread <= WIDE; spread++)
+        trains->ln_peak[spread] = -log(sqrt(2 * M_PI) * trains->deviation[spread]);
     for (int m = 1; m <= MAX_STEP; m++) {
         trains->ln_m[m] = log(m);
         trains->ln_steps[m] = log(DETECTED) + (m - 1) * log(1 - DETECTED);
@@ -148,11 +160,10 @@ static void keep(struct node *node, const struct link *link)
     node->links[place] = *link;
 }
 
-static double ln_density(const struct trains *trains, double d)
+static double ln_density(const struct trains *trains, int spread, double d)
 {
-    double narrow = trains->ln_narrow - d * d / (2 * trains->narrow * trains->narrow);
-    double wide = trains->ln_wide - d * d / (2 * trains->wide * trains->wide);
-    return fmax(narrow, wide); /* within ln 2 below the sum of the two */
+    double scaled = d / trains->deviation[spread];
+    return trains->ln_peak[spread] - scaled * scaled / 2;
 }
 
 /* How many intervals an interval so much longer (ln) than the one before most likely is. */
@@ -163,7 +174,7 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
     uint32_t best = 1;
     double most = -INFINITY;
     for (uint32_t m = 1; m <= MAX_STEP; m++) {
-        double ln = ln_density(trains, ratio - trains->ln_m[m]) + trains->ln_steps[m];
+        double ln = ln_density(trains, WIDE, ratio - trains->ln_m[m]) + trains->ln_steps[m];
         if (ln > most) {
             most = ln;
             best = m;
@@ -189,22 +200,30 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     double ln_interval = log(interval);
     double level_cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
-    if (interval <= shape->max_interval_s && from->owner == 0)
+    if (interval <= shape->max_interval_s && from->owner == 0) {
+        double score = -ln_interval - trains->ln_range - level_cost;
         best = (struct link){.previous = number,
                              .n = 2,
                              .steps = 1,
                              .ln_interval = ln_interval,
-                             .score = -ln_interval - trains->ln_range - level_cost,
-                             .rank = -ln_interval - trains->ln_range - level_cost - ln_rate};
+                             .gain = score,
+                             .score = {score, score},
+                             .ln_rates = ln_rate,
+                             .rank = score - ln_rate};
+    }
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
+        if (from->owner && link->train != from->owner)
+            continue;
         double ratio = ln_interval - link->ln_interval;
         uint32_t m = likeliest_steps(trains, ratio);
         double d = ratio - trains->ln_m[m];
-        if (fabs(d) > 2.5 * trains->wide || (from->owner && link->train != from->owner))
+        if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE])
             continue;
-        double gain = ln_density(trains, d) - ln_interval + trains->ln_steps[m] - level_cost;
-        double rank = link->rank + gain - ln_rate;
+        double common = trains->ln_steps[m] - ln_interval - level_cost;
+        double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
+        double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
+        double rank = fmax(score[NARROW], score[WIDE]) - link->ln_rates - ln_rate;
         if (rank <= best.rank)
             continue;
         best = (struct link){.previous = number,
@@ -214,8 +233,9 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .steps = m,
                              .ln_interval = ln_interval - trains->ln_m[m],
                              .ln_ratio = d,
-                             .gain = gain,
-                             .score = link->score + gain,
+                             .gain = fmax(gain[NARROW], gain[WIDE]),
+                             .score = {score[NARROW], score[WIDE]},
+                             .ln_rates = link->ln_rates + ln_rate,
                              .rank = rank};
     }
     if (best.rank > -INFINITY)
@@ -306,28 +326,54 @@ static uint32_t count_above(const double *sorted, uint32_t n, double limit)
     return n - low;
 }
 
-/* Score of the chain in members[0..n) as if it began there, however long it is. */
+/* Score of the chain in members[0..n) as if it began there, however long it is, for the better of the two
+ * spreads (each has even odds). */
 static double walked_score(const struct trains *trains, uint32_t n)
 {
     const struct link *last = &node_of(trains, trains->members[0])->links[trains->chain_link[0]];
-    if (trains->chain_link[n - 1] == UINT32_MAX)
-        return last->score;
-    const struct link *first = &node_of(trains, trains->members[n - 2])->links[trains->chain_link[n - 2]];
-    return last->score - first->score - first->ln_interval - trains->ln_range;
+    double score[2] = {last->score[NARROW], last->score[WIDE]};
+    if (trains->chain_link[n - 1] != UINT32_MAX) {
+        const struct link *first = &node_of(trains, trains->members[n - 2])->links[trains->chain_link[n - 2]];
+        for (int spread = NARROW; spread <= WIDE; spread++)
+            score[spread] -= first->score[spread] + first->ln_interval + trains->ln_range;
+    }
+    return fmax(score[NARROW], score[WIDE]) - log(2);
 }
 
-/* Whether the chain in members[0..n) is more than chance. A chain picked out of many strays has taken some of
- * them for its own, which is made good: the share that strays have among all; and since they are counted over
- * a short time, one more and a standard deviation are added. */
+/* The rate of noise pulses that compete with one of this snr. Its level speaks against noise, of which ever
+ * fewer reach it, as far as the spread of a train's own levels lets it: the rate per dB there, over that
+ * spread; or all of the noise's pulses where that is less. Twice, for the choice between the two. */
+static double competing_noise(const struct trains *trains, double snr)
+{
+    const double step_db = 0.25;
+    double rate = noise_rate(trains, snr), next = noise_rate(trains, snr * units_power_ratio(step_db));
+    double per_db = log(rate / fmax(next, 1e-300)) / step_db;
+    return fmin(trains->all_noise, rate * per_db * LEVEL_DEVIATION_DB * sqrt(2 * M_PI));
+}
+
+/* The rate at which stray pulses compete with one, given the n_strays levels in sorted[], counted over
+ * span_s, and the chain's n pulses: those that noise does not explain. A chain picked out of many strays has
+ * taken some of them for its own, which is made good: the share that strays have among all; and since they
+ * are counted over a short time, one more and a standard deviation are added. */
+static double competing_strays(const struct trains *trains, const struct node *node, uint32_t n_strays,
+                               double span_s, uint32_t n)
+{
+    double limit_db = node->level_db - LEVEL_STEP_DB;
+    double strays = count_above(trains->sorted, n_strays, limit_db);
+    double noise = fmin(trains->all_noise, noise_rate(trains, units_power_ratio(limit_db))) * span_s;
+    double excess = fmax(0, strays - noise);
+    return (excess * (1 + n / (strays + n)) + 1 + sqrt(strays)) / span_s;
+}
+
+/* Whether the chain in members[0..n) is more than chance. */
 static bool certain(struct trains *trains, uint32_t n, double score)
 {
     double span_s, ratio = score, first = 0;
     uint32_t n_strays = gather_strays(trains, n, &span_s);
     for (uint32_t i = 0; i < n; i++) {
         const struct node *node = node_of(trains, trains->members[i]);
-        double strays = count_above(trains->sorted, n_strays, node->level_db - LEVEL_STEP_DB);
-        double rate = (strays * (1 + n / (strays + n)) + 1 + sqrt(strays)) / span_s +
-                      trains->noise.get(trains->noise.context, node->snr) + RATE_FLOOR;
+        double rate = competing_strays(trains, node, n_strays, span_s, n) +
+                      competing_noise(trains, node->snr) + RATE_FLOOR;
         if (i + 1 < n)
             ratio -= log(rate);
         else
@@ -395,8 +441,16 @@ static double running_strays(const struct trains *trains, const struct node *nod
 {
     double memory_s = RATE_INTERVALS * trains->call_class.train.max_interval_s;
     double own = fmin(link->n / memory_s, exp(-link->ln_interval));
-    return fmax(0, trains->rate_above[level_index(node)] - own) +
-           trains->noise.get(trains->noise.context, node->snr) + RATE_FLOOR;
+    return fmax(0, trains->rate_above[level_index(node)] - own) + noise_rate(trains, node->snr) + RATE_FLOOR;
+}
+
+/* Spares most chains the walk: false when a rate of stray pulses that is surely too low would not do. */
+static bool may_be_certain(const struct trains *trains, const struct node *node, const struct link *link)
+{
+    double steps = fmin(link->n, JUDGED_PULSES) - 1;
+    double score = fmax(link->score[NARROW], link->score[WIDE]) * fmin(1, JUDGED_PULSES / (double)link->n);
+    double low_rate = fmax(0, running_strays(trains, node, link) - trains->all_noise) / 3 + RATE_FLOOR;
+    return score - steps * log(low_rate) > log(3600 * low_rate / trains->call_class.false_per_hour);
 }
 
 /* Opens a train for the chain that ends with link `best` of the newest pulse, if it is one. */
@@ -407,11 +461,7 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
     uint64_t number = trains->n_pulses - 1;
     struct node *node = node_of(trains, number);
     struct link *link = &node->links[best];
-    /* Most chains are far from certain: spare them the walk. */
-    double low_rate = running_strays(trains, node, link) / 3;
-    double steps = fmin(link->n, JUDGED_PULSES) - 1,
-           score = link->score * fmin(1, JUDGED_PULSES / (double)link->n);
-    if (score - steps * log(low_rate) < log(3600 * low_rate / trains->call_class.false_per_hour))
+    if (!may_be_certain(trains, node, link))
         return;
     uint32_t n = walk(trains, number, best, UINT64_MAX, JUDGED_PULSES), taken = 0, hidden = 0;
     for (uint32_t i = 0; i < n; i++) {
@@ -535,8 +585,8 @@ void trains_push(struct trains *trains, const struct pulse *pulse, const struct 
     const struct train_shape *shape = &trains->call_class.train;
     uint64_t number = trains->n_pulses - 1;
     struct node *node = node_of(trains, number);
-    double ln_rate = log(trains->noise.get(trains->noise.context, node->snr) +
-                         RANK_SHARE * trains->rate_above[level_index(node)] + RATE_FLOOR);
+    double ln_rate =
+        log(noise_rate(trains, node->snr) + RANK_SHARE * trains->rate_above[level_index(node)] + RATE_FLOOR);
     for (uint64_t k = number; k > 0 && remembered(trains, k - 1); k--) {
         const struct node *from = node_of(trains, k - 1);
         double gap = node->time_s - from->time_s;

@@ -4,12 +4,13 @@
  * click by MHT", 2008: slowly varying interval and amplitude), searched by dynamic programming over pairs of
  * pulses. A chain's score is its likelihood ratio against pulses that come at random (Poisson) at the rate
  * seen around it: each further pulse at interval I after one of interval J: d = ln(I / (m J)), m - 1 pulses
- * missed, density p_d (1 - p_d)^(m - 1) (N(d; max_jitter / 4) + N(d; max_jitter)) / 2 / I against the rate; a
- * level that differs by A dB costs A^2 / (2 * 4^2). Under randomness the expected ratio of each step is at
- * most 1, so the expected number of chains an hour that ever reach a ratio R is at most 3600 rate / R
- * (Ville's inequality for likelihood ratios, here over the branches). A train is given when R > 3600 rate /
- * false_per_hour: the class's stated rate is a bound in random pulses of any rate, in calm noise as in
- * snapping shrimp, and strong pulses, which noise seldom gives, need fewer of them.
+ * missed, density p_d (1 - p_d)^(m - 1) N(d; s) / I against the rate; a level that differs by A dB costs
+ * A^2 / (2 * 4^2). The whole chain is scored with s = max_jitter / 4 and with max_jitter at even odds, and
+ * the better one counts. Under randomness the expected ratio of each step is at most 1, so the expected
+ * number of chains an hour that ever reach a ratio R is at most 3600 rate / R (Ville's inequality for
+ * likelihood ratios, here over the branches). A train is given when R > 3600 rate / false_per_hour: the
+ * class's stated rate is a bound in random pulses of any rate, in calm noise as in snapping shrimp, and
+ * strong pulses, which noise seldom gives, need fewer of them.
  *
  * How a long train is given: first as soon as it is certain (at least min_pulses), then again, as a call of
  * its own that begins with the pulse after the last one given, at most every 10 s (or 200 pulses), and at its

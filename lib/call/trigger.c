@@ -15,9 +15,9 @@
 #define GUARD_MARGIN 2       /* slots: the two filters are not equally late */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
 #define FLOOR_PA2 1e-30      /* below any background: digital silence */
-#define LOOKS_PER_WINDOW                                                                                     \
-    2.5 /* independent looks in a window's time that a sliding window takes; measured                        \
-         */
+/* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
+ * level (with which they grow, as Rice's formula has it); measured in white noise. */
+#define UPCROSSINGS 0.65
 
 enum trigger_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 
@@ -423,7 +423,7 @@ double trigger_get_noise_rate(const struct trigger *trigger, double snr)
     double freedom = 8 / (trigger->statistics.skewness * trigger->statistics.skewness), a = freedom / 2;
     double deviations = snr / sqrt(2 / trigger->statistics.freedom);
     double x = (freedom + deviations * sqrt(2 * freedom)) / 2;
-    double looks = LOOKS_PER_WINDOW * (1 + snr) / trigger->setup.call_class->train.pulse_s;
+    double looks = UPCROSSINGS * (1 + snr) / trigger->setup.call_class->train.pulse_s;
     return looks * gamma_tail(a, fmax(x, a + 1));
 }
 

@@ -174,7 +174,7 @@ static void animals_are_found_with_class_and_interval(void **state)
                "classes\n",
                clicker->class_name, clicker->rate_hz / 1000, n, sent, hearing->n_found, interval_s, sent_s,
                n_other);
-        assert_true(n <= sent && n >= 0.8 * sent);
+        assert_true(n <= sent + 3 && n >= 0.8 * sent); /* a noise pulse may slip into a train */
         assert_near(interval_s, sent_s, 0.1 * sent_s); /* a median against a mean */
         assert_int_equal(n_other, 0);
         done(hearing);
