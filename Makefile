@@ -30,7 +30,7 @@ LIB_SOURCES = $(wildcard lib/*.c lib/*/*.c)
 DAEMON_SOURCES = $(filter-out $(MAINS),$(wildcard daemon/*.c daemon/*/*.c))
 LIB_OBJECTS = $(LIB_SOURCES:%.c=$(BUILD)/%.o)
 DAEMON_OBJECTS = $(DAEMON_SOURCES:%.c=$(BUILD)/%.o) $(BUILD)/generated/web.o
-SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c,$(wildcard tests/support/*.c)))
+SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c tests/support/block_%.c,$(wildcard tests/support/*.c)))
 WEB_FILES = $(wildcard web/*)
 
 PROGRAMS = $(BUILD)/hushwatchd $(BUILD)/hushwatch $(BUILD)/hushwatch-capture
