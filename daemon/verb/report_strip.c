@@ -9,37 +9,35 @@
 #define WIDTH 600.0
 #define ROW 20.0
 
-/* clang-format off: SQL reads in its own lines */
+/* SQL reads in its own lines. */
+/* clang-format off */
 
 /* Watch time of a UTC text, by the first run's zero. */
-#define ZERO_UTC                                                                                             \
-    "coalesce((SELECT watch_zero_utc FROM run ORDER BY seq LIMIT 1), (SELECT utc FROM entry ORDER BY seq "   \
-    "LIMIT 1))"
+#define ZERO_UTC \
+    "coalesce((SELECT watch_zero_utc FROM run ORDER BY seq LIMIT 1)," \
+    " (SELECT utc FROM entry ORDER BY seq LIMIT 1))"
 #define WATCH_S(utc) "((julianday(" utc ") - julianday(" ZERO_UTC ")) * 86400)"
 #define END_S "(SELECT " WATCH_S("utc") " FROM entry ORDER BY seq DESC LIMIT 1)"
-#define WATCHED(watch)                                                                                       \
-    "SELECT " WATCH_S("utc") ", (SELECT min(" WATCH_S(                                                       \
-        "b.utc") ") FROM note AS b WHERE b.note = 'sign-off'"                                                \
-                 " AND b.person = a.person AND (b.watch IS NULL OR b.watch = a.watch) AND b.seq > a.seq), "  \
-                 "'bar'"                                                                                     \
-                 " FROM note AS a WHERE a.note = 'sign-on' AND a.watch = '" watch "'"
+#define WATCHED(watch) \
+    "SELECT " WATCH_S("utc") ", (SELECT min(" WATCH_S("b.utc") ") FROM note AS b WHERE b.note = 'sign-off'" \
+    " AND b.person = a.person AND (b.watch IS NULL OR b.watch = a.watch) AND b.seq > a.seq), 'bar'" \
+    " FROM note AS a WHERE a.note = 'sign-on' AND a.watch = '" watch "'"
 
 static const char visual_sql[] = WATCHED("visual");
 static const char acoustic_sql[] = WATCHED("acoustic");
 static const char unheard_sql[] =
     "SELECT start_s, end_s, 'hatch' FROM unheard UNION ALL"
     " SELECT outage_start_s, outage_end_s, 'hatch' FROM run WHERE outage_end_s > outage_start_s";
-static const char phase_sql[] = "SELECT " WATCH_S("utc") ", lead(" WATCH_S(
-    "utc") ") OVER (ORDER BY seq),"
-           " CASE WHEN phase IN ('soft start', 'hold', 'full power', 'reduced', 'vibro', 'drilling', 'test')"
-           " THEN 'grey' ELSE 'open' END, phase FROM phase";
-static const char contact_sql[] = "SELECT min(" WATCH_S("utc") "), max(" WATCH_S(
-    "utc") "),"
-           " CASE WHEN max(grade = 'act') THEN 'bar' ELSE 'open' END FROM contact GROUP BY contact";
+static const char phase_sql[] =
+    "SELECT " WATCH_S("utc") ", lead(" WATCH_S("utc") ") OVER (ORDER BY seq),"
+    " CASE WHEN phase IN ('soft start', 'hold', 'full power', 'reduced', 'vibro', 'drilling', 'test')"
+    " THEN 'grey' ELSE 'open' END, phase FROM phase";
+static const char contact_sql[] =
+    "SELECT min(" WATCH_S("utc") "), max(" WATCH_S("utc") "),"
+    " CASE WHEN max(grade = 'act') THEN 'bar' ELSE 'open' END FROM contact GROUP BY contact";
 static const char advice_sql[] =
     "SELECT " WATCH_S("utc") ", CASE WHEN advice IN ('stop', 'do not start', 'hold power', 'reduce power',"
-                             " 'prepare to stop') THEN 'stop' ELSE '' END FROM advice WHERE station <> "
-                             "'observer' ORDER BY 2, 1";
+    " 'prepare to stop') THEN 'stop' ELSE '' END FROM advice WHERE station <> 'observer' ORDER BY 2, 1";
 /* As many marks as the picture is wide, however many impulses there were. */
 static const char impulse_sql[] =
     "SELECT min(time_s), min(time_s), 'bar' FROM impulse, (SELECT max(1e-6, " END_S ") / 600 AS step)"

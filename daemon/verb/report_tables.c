@@ -1,7 +1,8 @@
 /* The sections of a report, each a query over the ledger's views. Durations are h:mm:ss; times are UTC. */
 #include "verb/sheet.h"
 
-/* clang-format off: SQL reads in its own lines */
+/* SQL reads in its own lines. */
+/* clang-format off */
 
 /* A UTC text as people read it; the clock alone; seconds between two; seconds as h:mm:ss. */
 #define WHEN(utc) "replace(substr(" utc ", 1, 19), 'T', ' ')"
@@ -16,148 +17,85 @@
 #define LAST_UTC "(SELECT utc FROM entry ORDER BY seq DESC LIMIT 1)"
 
 /* Each run with its last time. */
-#define RUNS                                                                                                 \
-    "runs AS (SELECT run.*, (SELECT e.utc FROM entry AS e WHERE e.seq < coalesce("                           \
-    "(SELECT min(n.seq) FROM run AS n WHERE n.seq > run.seq), 9e18) ORDER BY e.seq DESC LIMIT 1) AS "        \
-    "end_utc FROM run)"
+#define RUNS \
+    "runs AS (SELECT run.*, (SELECT e.utc FROM entry AS e WHERE e.seq < coalesce(" \
+    "(SELECT min(n.seq) FROM run AS n WHERE n.seq > run.seq), 9e18) ORDER BY e.seq DESC LIMIT 1) AS end_utc" \
+    " FROM run)"
 
 /* Unheard pieces by the columns given; each counts from where all before it have ended, so that overlaps
  * count once. */
-#define PIECES(columns)                                                                                      \
-    "piece AS (SELECT " columns ", start_s, end_s, low_hz, high_hz, max(end_s) OVER (PARTITION BY " columns  \
+#define PIECES(columns) \
+    "piece AS (SELECT " columns ", start_s, end_s, low_hz, high_hz, max(end_s) OVER (PARTITION BY " columns \
     " ORDER BY start_s, end_s ROWS BETWEEN UNBOUNDED PRECEDING AND 1 PRECEDING) AS covered_s FROM unheard)"
 #define PIECES_S "sum(max(0, end_s - max(start_s, coalesce(covered_s, start_s))))"
 
 static const char runs_sql[] =
-    "WITH " RUNS " SELECT run, command, " WHEN("utc") ", " WHEN("end_utc") ", " DURATION(BETWEEN(
-        "utc", "end_utc")) ","
-                           " CASE WHEN outage_end_s > outage_start_s THEN " DURATION(
-                               "outage_end_s - outage_start_s") " END,"
-                                                                " start_from, input FROM runs ORDER BY seq";
+    "WITH " RUNS
+    " SELECT run, command, " WHEN("utc") ", " WHEN("end_utc") ", " DURATION(BETWEEN("utc", "end_utc")) ","
+    " CASE WHEN outage_end_s > outage_start_s THEN " DURATION("outage_end_s - outage_start_s") " END,"
+    " start_from, input FROM runs ORDER BY seq";
 
-static const char people_sql[] = "SELECT person, watch, station, " WHEN("utc") ", coalesce(" WHEN(
-    "off_utc") ", 'still on at the end'), " DURATION(BETWEEN("utc",
-                                                             "coalesce(off_utc, " LAST_UTC
-                                                             ")")) " FROM (SELECT seq, person, watch, "
-                                                                   "station, utc,"
-                                                                   " (SELECT min(b.utc) FROM note AS b WHERE "
-                                                                   "b.note = 'sign-off' AND b.person = "
-                                                                   "a.person"
-                                                                   " AND (b.watch IS NULL OR b.watch = "
-                                                                   "a.watch) AND b.seq > a.seq) AS off_utc"
-                                                                   " FROM note AS a WHERE a.note = "
-                                                                   "'sign-on') ORDER BY seq";
+static const char people_sql[] =
+    "SELECT person, watch, station, " WHEN("utc") ", coalesce(" WHEN("off_utc") ", 'still on at the end'), "
+    DURATION(BETWEEN("utc", "coalesce(off_utc, " LAST_UTC ")"))
+    " FROM (SELECT seq, person, watch, station, utc,"
+    " (SELECT min(b.utc) FROM note AS b WHERE b.note = 'sign-off' AND b.person = a.person"
+    " AND (b.watch IS NULL OR b.watch = a.watch) AND b.seq > a.seq) AS off_utc"
+    " FROM note AS a WHERE a.note = 'sign-on') ORDER BY seq";
 
 static const char heard_sql[] =
-    "WITH " RUNS
-    ", " PIECES("stream") ","
-                          " total AS (SELECT sum(" BETWEEN(
-                              "utc", "end_utc") ") AS s FROM runs),"
-                                                " lost AS (SELECT stream, " PIECES_S
-                                                " AS s FROM piece GROUP BY stream),"
-                                                " received AS (SELECT stream, max(s) AS s FROM (SELECT "
-                                                "json_extract(body, '$.stream') AS stream,"
-                                                " json_extract(body, '$.channel') AS channel, sum((SELECT "
-                                                "sum(value) "
-                                                "FROM json_each(body, '$.seconds'))) AS s"
-                                                " FROM entry WHERE kind = 'level' GROUP BY 1, 2) GROUP BY "
-                                                "stream),"
-                                                " streams AS (SELECT stream FROM lost UNION SELECT stream "
-                                                "FROM received)"
-                                                " SELECT stream, " DURATION("total.s") ", " DURATION(
-                                                    "coalesce(lost.s, "
-                                                    "0)") ", " DURATION("max(0, total.s - coalesce(lost.s, "
-                                                                        "0))") ", " DURATION("coalesce("
-                                                                                             "received.s, "
-                                                                                             "0)") " FROM "
-                                                                                                   "streams"
-                                                                                                   " LEFT "
-                                                                                                   "JOIN "
-                                                                                                   "lost "
-                                                                                                   "USING "
-                                                                                                   "(stream"
-                                                                                                   ") LEFT "
-                                                                                                   "JOIN "
-                                                                                                   "receive"
-                                                                                                   "d "
-                                                                                                   "USING "
-                                                                                                   "(stream"
-                                                                                                   "), "
-                                                                                                   "total "
-                                                                                                   "ORDER "
-                                                                                                   "BY "
-                                                                                                   "stream";
+    "WITH " RUNS ", " PIECES("stream") ","
+    " total AS (SELECT sum(" BETWEEN("utc", "end_utc") ") AS s FROM runs),"
+    " lost AS (SELECT stream, " PIECES_S " AS s FROM piece GROUP BY stream),"
+    " received AS (SELECT stream, max(s) AS s FROM (SELECT json_extract(body, '$.stream') AS stream,"
+    " json_extract(body, '$.channel') AS channel, sum((SELECT sum(value) FROM json_each(body, '$.seconds'))) AS s"
+    " FROM entry WHERE kind = 'level' GROUP BY 1, 2) GROUP BY stream),"
+    " streams AS (SELECT stream FROM lost UNION SELECT stream FROM received)"
+    " SELECT stream, " DURATION("total.s") ", " DURATION("coalesce(lost.s, 0)") ", "
+    DURATION("max(0, total.s - coalesce(lost.s, 0))") ", " DURATION("coalesce(received.s, 0)")
+    " FROM streams LEFT JOIN lost USING (stream) LEFT JOIN received USING (stream), total ORDER BY stream";
 
-static const char unheard_sql[] = "WITH " PIECES(
-    "stream, channel, cause") " SELECT cause, stream, channel, printf('%.0f', min(low_hz)),"
-                              " CASE WHEN count(high_hz) < count(*) THEN 'no limit' ELSE printf('%.0f', "
-                              "max(high_hz)) END,"
-                              " count(*), " DURATION(
-                                  PIECES_S) " FROM piece GROUP BY cause, stream, channel ORDER BY " PIECES_S
-                                            " DESC, cause, stream, channel";
+static const char unheard_sql[] =
+    "WITH " PIECES("stream, channel, cause")
+    " SELECT cause, stream, channel, printf('%.0f', min(low_hz)),"
+    " CASE WHEN count(high_hz) < count(*) THEN 'no limit' ELSE printf('%.0f', max(high_hz)) END,"
+    " count(*), " DURATION(PIECES_S)
+    " FROM piece GROUP BY cause, stream, channel ORDER BY " PIECES_S " DESC, cause, stream, channel";
 
-static const char advice_sql[] = "SELECT " WHEN(
-    "a.utc") ", a.station,"
-             " a.advice || CASE WHEN a.confirmed OR a.station = 'observer' THEN '' ELSE ' (not yet "
-             "confirmed)' END,"
-             " a.reason, a.clause, trim(coalesce(" CLOCK(
-                 "a.until") ", '') || coalesce(char(10) || a.requires, ''), char(10)),"
-                            " (SELECT group_concat(n.answer || ' by ' || coalesce(n.person, '?') || "
-                            "coalesce(', ' || n.station, '')"
-                            " || ' at ' || " CLOCK("n.utc") " || ', ' || printf('%.0f', " BETWEEN(
-                                "a.utc", "n.utc") ") || ' s after'"
-                                                  " || coalesce(': ' || n.text, ''), char(10))"
-                                                  " FROM note AS n WHERE n.note = 'acknowledgement' AND "
-                                                  "n.advice = a.id)"
-                                                  " FROM advice AS a ORDER BY a.seq";
+static const char advice_sql[] =
+    "SELECT " WHEN("a.utc") ", a.station,"
+    " a.advice || CASE WHEN a.confirmed OR a.station = 'observer' THEN '' ELSE ' (not yet confirmed)' END,"
+    " a.reason, a.clause,"
+    " trim(coalesce(" CLOCK("a.until") ", '') || coalesce(char(10) || a.requires, ''), char(10)),"
+    " (SELECT group_concat(n.answer || ' by ' || coalesce(n.person, '?') || coalesce(', ' || n.station, '')"
+    " || ' at ' || " CLOCK("n.utc") " || ', ' || printf('%.0f', " BETWEEN("a.utc", "n.utc") ") || ' s after'"
+    " || coalesce(': ' || n.text, ''), char(10))"
+    " FROM note AS n WHERE n.note = 'acknowledgement' AND n.advice = a.id)"
+    " FROM advice AS a ORDER BY a.seq";
 
 static const char phases_sql[] = "SELECT " WHEN("utc") ", phase, reason, clause, job FROM phase ORDER BY seq";
 
-static const char contacts_sql[] = "SELECT c.contact, c.\"group\", s.grade, " WHEN("s.first_utc") ", " CLOCK(
-    "s.last_utc") ", s.n_calls,"
-                  " coalesce(" KNOWN(
-                      "%.0f",
-                      "d.distance_p50_m") ", 'unknown'),"
-                                          " " KNOWN("%.0f", "d.distance_p05_m") " || ' to ' || " KNOWN(
-                                              "%.0f",
-                                              "d.distance_p95_m") ","
-                                                                  " " KNOWN(
-                                                                      "%.2f",
-                                                                      "d.p_inside") ", c.state"
-                                                                                    " FROM contact AS c JOIN "
-                                                                                    "(SELECT max(seq) AS "
-                                                                                    "last_seq, min(utc) AS "
-                                                                                    "first_utc, max(utc) AS "
-                                                                                    "last_utc,"
-                                                                                    " max(n_calls) AS "
-                                                                                    "n_calls, CASE max(CASE "
-                                                                                    "grade WHEN 'act' THEN 2 "
-                                                                                    "WHEN 'look' THEN 1 ELSE "
-                                                                                    "0 END)"
-                                                                                    " WHEN 2 THEN 'act' WHEN "
-                                                                                    "1 THEN 'look' ELSE '' "
-                                                                                    "END AS grade,"
-                                                                                    " max(CASE WHEN "
-                                                                                    "distance_p50_m IS NOT "
-                                                                                    "NULL THEN seq END) AS "
-                                                                                    "distance_seq FROM "
-                                                                                    "contact GROUP BY "
-                                                                                    "contact) AS s"
-                                                                                    " ON c.seq = s.last_seq "
-                                                                                    "LEFT JOIN contact AS d "
-                                                                                    "ON d.seq = "
-                                                                                    "s.distance_seq ORDER BY "
-                                                                                    "c.contact";
+static const char contacts_sql[] =
+    "SELECT c.contact, c.\"group\", s.grade, " WHEN("s.first_utc") ", " CLOCK("s.last_utc") ", s.n_calls,"
+    " coalesce(" KNOWN("%.0f", "d.distance_p50_m") ", 'unknown'),"
+    " " KNOWN("%.0f", "d.distance_p05_m") " || ' to ' || " KNOWN("%.0f", "d.distance_p95_m") ","
+    " " KNOWN("%.2f", "d.p_inside") ", c.state"
+    " FROM contact AS c JOIN (SELECT max(seq) AS last_seq, min(utc) AS first_utc, max(utc) AS last_utc,"
+    " max(n_calls) AS n_calls, CASE max(CASE grade WHEN 'act' THEN 2 WHEN 'look' THEN 1 ELSE 0 END)"
+    " WHEN 2 THEN 'act' WHEN 1 THEN 'look' ELSE '' END AS grade,"
+    " max(CASE WHEN distance_p50_m IS NOT NULL THEN seq END) AS distance_seq FROM contact GROUP BY contact) AS s"
+    " ON c.seq = s.last_seq LEFT JOIN contact AS d ON d.seq = s.distance_seq ORDER BY c.contact";
 
-static const char notes_sql[] = "SELECT " WHEN("utc") ", note, person, trim(" PIECE("watch || ' watch'")
-    PIECE("'at ' || station") PIECE("answer") PIECE("advice") PIECE("source_state") PIECE("'job ' || job")
-        PIECE("'contact ' || contact") PIECE("verdict") PIECE("\"group\"") PIECE("species")
-            PIECE(KNOWN("%.0f animals", "number")) PIECE("CASE WHEN calf THEN 'with calf' END") PIECE(
-                KNOWN("%.0f m from the source", "distance_m")) PIECE(KNOWN("bearing %.0f", "bearing_deg"))
-                PIECE("CASE WHEN leaving THEN 'leaving' END") PIECE(KNOWN("sea state %g", "sea_state"))
-                    PIECE(KNOWN("visibility %.0f m", "visibility_m"))
-                        PIECE("CASE WHEN known_s - occurred_s >= 1 THEN printf('(%.0f s before)', known_s - "
-                              "occurred_s) END") "coalesce(text, '')) FROM note ORDER BY seq";
+static const char notes_sql[] =
+    "SELECT " WHEN("utc") ", note, person, trim("
+    PIECE("watch || ' watch'") PIECE("'at ' || station") PIECE("answer") PIECE("advice") PIECE("source_state")
+    PIECE("'job ' || job") PIECE("'contact ' || contact") PIECE("verdict") PIECE("\"group\"") PIECE("species")
+    PIECE(KNOWN("%.0f animals", "number")) PIECE("CASE WHEN calf THEN 'with calf' END")
+    PIECE(KNOWN("%.0f m from the source", "distance_m")) PIECE(KNOWN("bearing %.0f", "bearing_deg"))
+    PIECE("CASE WHEN leaving THEN 'leaving' END") PIECE(KNOWN("sea state %g", "sea_state"))
+    PIECE(KNOWN("visibility %.0f m", "visibility_m"))
+    PIECE("CASE WHEN known_s - occurred_s >= 1 THEN printf('(%.0f s before)', known_s - occurred_s) END")
+    "coalesce(text, '')) FROM note ORDER BY seq";
 
 static const char impulses_sql[] =
     "WITH ranked AS (SELECT *,"
@@ -165,13 +103,12 @@ static const char impulses_sql[] =
     " count(*) OVER (PARTITION BY job, whose, stream, channel) AS n FROM impulse)"
     " SELECT coalesce(job, 'none open'), whose, stream, channel, count(*), printf('%.1f', max(sel_db)),"
     " printf('%.1f', avg(CASE WHEN i IN ((n + 1) / 2, (n + 2) / 2) THEN sel_db END)),"
-    " printf('%.1f', max(peak_db)), " WHEN("min(utc)") ", " CLOCK(
-        "max(utc)") ","
-                    " trim(CASE WHEN max(relative) THEN 'relative ' ELSE '' END"
-                    " || CASE WHEN sum(clipped) THEN sum(clipped) || ' clipped ' ELSE '' END"
-                    " || CASE WHEN sum(overlapped) THEN sum(overlapped) || ' overlapped ' ELSE '' END"
-                    " || CASE WHEN sum(weak) THEN sum(weak) || ' weak' ELSE '' END)"
-                    " FROM ranked GROUP BY job, whose, stream, channel ORDER BY job, whose, stream, channel";
+    " printf('%.1f', max(peak_db)), " WHEN("min(utc)") ", " CLOCK("max(utc)") ","
+    " trim(CASE WHEN max(relative) THEN 'relative ' ELSE '' END"
+    " || CASE WHEN sum(clipped) THEN sum(clipped) || ' clipped ' ELSE '' END"
+    " || CASE WHEN sum(overlapped) THEN sum(overlapped) || ' overlapped ' ELSE '' END"
+    " || CASE WHEN sum(weak) THEN sum(weak) || ' weak' ELSE '' END)"
+    " FROM ranked GROUP BY job, whose, stream, channel ORDER BY job, whose, stream, channel";
 
 static const char findings_sql[] =
     "SELECT " WHEN("utc") ", grade, code, detail, clause, job FROM finding ORDER BY seq";
@@ -189,12 +126,11 @@ static const char permit_sql[] =
     "SELECT permit, title, document, year, CASE WHEN demonstration THEN 'NO: a demonstration' ELSE 'yes' END,"
     " substr(sha256, 1, 32) || ' ' || substr(sha256, 33) FROM permit GROUP BY sha256 ORDER BY min(seq)";
 
-static const char values_sql[] = "SELECT json_extract(v.value, '$.key'), json_extract(v.value, '$.value'), "
-                                 "json_extract(v.value, '$.mark'),"
-                                 " json_extract(v.value, '$.source')"
-                                 " FROM (SELECT \"values\", min(seq) AS first FROM permit GROUP BY sha256) "
-                                 "AS p, json_each(p.\"values\") AS v"
-                                 " WHERE json_extract(v.value, '$.mark') <> 'read' ORDER BY p.first, v.key";
+static const char values_sql[] =
+    "SELECT json_extract(v.value, '$.key'), json_extract(v.value, '$.value'), json_extract(v.value, '$.mark'),"
+    " json_extract(v.value, '$.source')"
+    " FROM (SELECT \"values\", min(seq) AS first FROM permit GROUP BY sha256) AS p, json_each(p.\"values\") AS v"
+    " WHERE json_extract(v.value, '$.mark') <> 'read' ORDER BY p.first, v.key";
 
 /* clang-format on */
 

@@ -14,60 +14,71 @@
 /* The i-th second of a minute's entry. */
 #define SECOND(name) ", json_extract(body, '$." name "[' || second.key || ']') AS " name
 
+/* clang-format off */
 const struct schema_object views_schema[] = {
     {"table", "entry",
      "CREATE TABLE entry(seq INTEGER PRIMARY KEY, utc TEXT, kind TEXT, body TEXT, hash TEXT)"},
     {"index", "entry_kind", "CREATE INDEX entry_kind ON entry(kind)"},
     {"index", "entry_id", "CREATE INDEX entry_id ON entry(" VIEWS_ID_SQL ")"},
-    VIEW("run", COLUMN("site") COLUMN("command") COLUMN("watch_zero_utc") COLUMN("watch_start_s")
-                    COLUMN("outage_start_s") COLUMN("outage_end_s") COLUMN("start_from") COLUMN("input")
-                        COLUMN("permit") COLUMN("settings") COLUMN("version") COLUMN("build") COLUMN("cpu")),
-    VIEW("permit", COLUMN("permit") COLUMN("title") COLUMN("document") COLUMN("year") COLUMN("demonstration")
-                       COLUMN("sha256") COLUMN("text") ", json_extract(body, '$.values') AS \"values\""),
+    VIEW("run",
+        COLUMN("site") COLUMN("command") COLUMN("watch_zero_utc") COLUMN("watch_start_s")
+        COLUMN("outage_start_s") COLUMN("outage_end_s") COLUMN("start_from") COLUMN("input") COLUMN("permit")
+        COLUMN("settings") COLUMN("version") COLUMN("build") COLUMN("cpu")),
+    VIEW("permit",
+        COLUMN("permit") COLUMN("title") COLUMN("document") COLUMN("year") COLUMN("demonstration")
+        COLUMN("sha256") COLUMN("text") ", json_extract(body, '$.values') AS \"values\""),
     VIEW("job", COLUMN("job") COLUMN("state") COLUMN("causes")),
     VIEW("source", COLUMN("source") COLUMN("state") COLUMN("said_by") COLUMN("heard") COLUMN("causes")),
     VIEW("call",
-         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
-             COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
-                 COLUMN("snr_db") COLUMN("level_db") COLUMN("relative") COLUMN("bearing_deg")
-                     COLUMN("mirror_deg") COLUMN("bearing_from") COLUMN("certainty") COLUMN("evidence")),
+        COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
+        COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
+        COLUMN("snr_db") COLUMN("level_db") COLUMN("relative") COLUMN("bearing_deg") COLUMN("mirror_deg")
+        COLUMN("bearing_from") COLUMN("certainty") COLUMN("evidence")),
     VIEW("impulse",
-         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("time_s") COLUMN("sel_db") COLUMN("peak_db")
-             COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db")
-                 COLUMN("whose") COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak")),
+        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("time_s") COLUMN("sel_db") COLUMN("peak_db")
+        COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db") COLUMN("whose")
+        COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak")),
     {"view", "level",
      "CREATE VIEW level AS SELECT seq, CAST(json_extract(body, '$.id') AS INTEGER) AS run, utc, "
-     "json_extract(body, '$.id') AS id" COLUMN("stream") COLUMN("channel") ", second.value AS start_s" SECOND(
-         "seconds") SECOND("spl_db") SECOND("peak_db") COLUMN("relative")
-         SECOND("bands") " FROM entry, json_each(body, '$.start_s') AS second WHERE kind = 'level'"},
-    VIEW("exposure", COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criterion") COLUMN_GROUP COLUMN(
-                         "n_impulses") COLUMN("sel_db") COLUMN("start_s") COLUMN("end_s")),
-    VIEW("contact", COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
-                        COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN(
-                            "bearing_deg") COLUMN("mirror_deg") COLUMN("bearing_from") COLUMN("p_inside")),
+     "json_extract(body, '$.id') AS id" COLUMN("stream") COLUMN("channel") ", second.value AS start_s"
+     SECOND("seconds") SECOND("spl_db") SECOND("peak_db") COLUMN("relative") SECOND("bands")
+     " FROM entry, json_each(body, '$.start_s') AS second WHERE kind = 'level'"},
+    VIEW("exposure",
+        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criterion") COLUMN_GROUP COLUMN("n_impulses")
+        COLUMN("sel_db") COLUMN("start_s") COLUMN("end_s")),
+    VIEW("contact",
+        COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
+        COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN("bearing_deg")
+        COLUMN("mirror_deg") COLUMN("bearing_from") COLUMN("p_inside")),
     VIEW("phase", COLUMN("phase") COLUMN("reason") COLUMN("clause") COLUMN("job") COLUMN("causes")),
-    VIEW("advice", COLUMN("advice") COLUMN("reason") COLUMN("clause") COLUMN("station") COLUMN("until")
-                       COLUMN("requires") COLUMN("confirmed") COLUMN("job") COLUMN("causes")),
+    VIEW("advice",
+        COLUMN("advice") COLUMN("reason") COLUMN("clause") COLUMN("station") COLUMN("until")
+        COLUMN("requires") COLUMN("confirmed") COLUMN("job") COLUMN("causes")),
     VIEW("finding",
-         COLUMN("code") COLUMN("clause") COLUMN("job") COLUMN("grade") COLUMN("detail") COLUMN("causes")),
-    VIEW("note", COLUMN("note") COLUMN("person") COLUMN("watch") COLUMN("station") COLUMN("occurred_s")
-                     COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number")
-                         COLUMN("calf") COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN(
-                             "verdict") COLUMN("advice") COLUMN("answer") COLUMN("job") COLUMN("source_state")
-                             COLUMN("sea_state") COLUMN("visibility_m") COLUMN("text")),
-    VIEW("unheard", COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
-                        COLUMN("end_s") COLUMN("cause")),
+        COLUMN("code") COLUMN("clause") COLUMN("job") COLUMN("grade") COLUMN("detail") COLUMN("causes")),
+    VIEW("note",
+        COLUMN("note") COLUMN("person") COLUMN("watch") COLUMN("station") COLUMN("occurred_s")
+        COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number") COLUMN("calf")
+        COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN("verdict") COLUMN("advice")
+        COLUMN("answer") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
+        COLUMN("text")),
+    VIEW("unheard",
+        COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
+        COLUMN("end_s") COLUMN("cause")),
     VIEW("health", COLUMN("stream") COLUMN("ok") COLUMN("health")),
     VIEW("calibration",
-         COLUMN("stream") COLUMN("channel") COLUMN("name") COLUMN("serial") COLUMN("role") COLUMN("known")
-             COLUMN("sensitivity_db") COLUMN("gain_db") COLUMN("full_scale_v") COLUMN("self_noise_db")
-                 COLUMN("clip_db") COLUMN("rate_hz") COLUMN("x_m") COLUMN("y_m") COLUMN("z_m")),
-    VIEW("clock", COLUMN("stream") COLUMN("anchor_frame") COLUMN("anchor_s") COLUMN("rate_hz")
-                      COLUMN("watch_zero_utc") COLUMN("offset_s") COLUMN("source") COLUMN("reason")),
-    VIEW("position", COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("heading_deg") COLUMN("course_deg")
-                         COLUMN("speed_m_s") COLUMN("source")),
+        COLUMN("stream") COLUMN("channel") COLUMN("name") COLUMN("serial") COLUMN("role") COLUMN("known")
+        COLUMN("sensitivity_db") COLUMN("gain_db") COLUMN("full_scale_v") COLUMN("self_noise_db")
+        COLUMN("clip_db") COLUMN("rate_hz") COLUMN("x_m") COLUMN("y_m") COLUMN("z_m")),
+    VIEW("clock",
+        COLUMN("stream") COLUMN("anchor_frame") COLUMN("anchor_s") COLUMN("rate_hz") COLUMN("watch_zero_utc")
+        COLUMN("offset_s") COLUMN("source") COLUMN("reason")),
+    VIEW("position",
+        COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("heading_deg") COLUMN("course_deg")
+        COLUMN("speed_m_s") COLUMN("source")),
     VIEW("stamp", COLUMN("first") COLUMN("last") COLUMN("text") COLUMN("signature") COLUMN("key")),
 };
+/* clang-format on */
 
 const size_t views_count = sizeof views_schema / sizeof views_schema[0];
 
