@@ -31,13 +31,26 @@ static void path_of(const char *name, char out[PATH_MAX])
 }
 
 /* The input starts the capture program that lies beside the running one. */
-static void put_capture_beside_us(void)
+static void capture_beside_us(char out[PATH_MAX + 32])
 {
-    char self[PATH_MAX], target[PATH_MAX], link[PATH_MAX + 32], built[PATH_MAX + 32];
+    char self[PATH_MAX];
     ssize_t n = readlink("/proc/self/exe", self, sizeof self - 1);
     assert_true(n > 0);
     self[n] = '\0';
-    snprintf(link, sizeof link, "%s/hushwatch-capture", dirname(self));
+    snprintf(out, PATH_MAX + 32, "%s/hushwatch-capture", dirname(self));
+}
+
+void live_hide_capture(void)
+{
+    char link[PATH_MAX + 32];
+    capture_beside_us(link);
+    unlink(link);
+}
+
+static void put_capture_beside_us(void)
+{
+    char target[PATH_MAX], link[PATH_MAX + 32], built[PATH_MAX + 32];
+    capture_beside_us(link);
     snprintf(built, sizeof built, "%s/hushwatch-capture", test_build());
     assert_non_null(realpath(built, target));
     unlink(link);

@@ -44,8 +44,8 @@ struct live_listener {
 
 /* Opens the input "device"; fails the test with the problems when that does not work. */
 void live_open(struct live_listener *listener, const struct stream_settings *settings);
-/* Reads and checks until the device time; returns at once from silence when until_silent, from sound after
- * silence when until_sound. */
+/* Reads and checks up to a device time, or until the first declared silence, or the first sound after
+ * silence. */
 enum live_until { LIVE_TIME, LIVE_UNTIL_SILENT, LIVE_UNTIL_SOUND };
 void live_listen(struct live_listener *listener, double until_s, enum live_until until);
 /* Seconds that closing took. */
@@ -53,5 +53,7 @@ double live_close(struct live_listener *listener);
 
 /* The capture program that this process started; 0: none. */
 pid_t live_capture_pid(void);
+/* Takes the capture program away from beside this one; live_begin puts it back. */
+void live_hide_capture(void);
 
 #endif
