@@ -11,7 +11,7 @@
 
 #define DELAY 32u        /* cells that the background stays behind, so that an onset is not in it */
 #define WARM_UP 40u      /* cells until filters and looks have settled */
-#define FIRST_CELLS 250u /* of background before anything is judged */
+#define FIRST_CELLS 500u /* of background before anything is judged */
 #define BEFORE 48u       /* cells of the window before the trigger */
 #define HOLD 60u         /* cells near the background that end it */
 #define LONGEST 1250u    /* cells of a window from its trigger */

@@ -58,7 +58,7 @@ struct impulse_finder;
  * STATUS_BAD_ARGUMENT, STATUS_NO_MEMORY; the caller owns *out. Holds 2 s of sound. */
 enum status impulse_finder_create(double rate_hz, double full_scale_pa, struct impulse_finder **out);
 void impulse_finder_destroy(struct impulse_finder *finder);
-/* Forgets the past and the background, which takes 0.3 s to be known again; next_frame is that of the next
+/* Forgets the past and the background, which takes 0.6 s to be known again; next_frame is that of the next
  * push. */
 void impulse_finder_reset(struct impulse_finder *finder, uint64_t next_frame);
 /* Takes n finite samples. Impulses come when their window ends: about 0.07 s after the sound has fallen to
