@@ -56,7 +56,7 @@ function update(card, contact) {
   part("countdown").hidden = !counts;
   if (counts) setText(part("countdown"), contact.countdown_ends_s > now ? "Your verdict, please: the crew is told in " + span(contact.countdown_ends_s - now) : "The crew has been told, not yet confirmed");
   const known = contact.distance_p50_m !== null;
-  const inside = contact.p_inside === null ? "" : ", " + Math.round(contact.p_inside * 100) + " % likely inside the zone";
+  const inside = contact.p_inside === null ? "" : ", " + (contact.p_inside < 0.01 ? "under 1" : contact.p_inside > 0.99 ? "over 99" : Math.round(contact.p_inside * 100)) + " % likely inside the zone";
   const bearing = contact.bearing_deg === null ? "" : ", bearing " + contact.bearing_deg.toFixed(0) + "° " + (contact.bearing_from || "") + (contact.mirror_deg === null ? "" : " or " + contact.mirror_deg.toFixed(0) + "°");
   setText(part("where"), (known ? `About ${metres(contact.distance_p50_m)} (${metres(contact.distance_p05_m)} to ${metres(contact.distance_p95_m)})` : "Range unknown") + inside + bearing);
   setText(part("evidence"), `${contact.n_calls} call${contact.n_calls === 1 ? "" : "s"}${contact.seen ? ", seen" : ", not seen"}; last ${span(now - contact.last_s)} ago, first ${utc(contact.first_s)} UTC; evidence ${contact.evidence.toFixed(1)}` +

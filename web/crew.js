@@ -2,7 +2,7 @@
 // A fault is shown beside the instruction and never in its place; only 'carry on' and 'may start' are withdrawn.
 import {
   $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
-  remember, remembered, setShape, setText, span, startPalette, startSound, utc, watchNow,
+  remember, remembered, sentence, setShape, setText, span, startPalette, startSound, utc, watchNow,
 } from "/page.js";
 
 const station = new URLSearchParams(location.search).get("station") || "crew";
@@ -48,7 +48,7 @@ function showMessage(advice, withdrawn, waiting) {
 
 function showFacts(advice, found) {
   const why = found.filter((fault) => fault.grave).map((fault) => fault.title.toLowerCase()).join(", ");
-  setText($("reason"), advice ? advice.reason || "–" : why ? why[0].toUpperCase() + why.slice(1).replace(/ utc/g, " UTC") : "–");
+  setText($("reason"), advice ? sentence(advice.reason) || "–" : why ? why[0].toUpperCase() + why.slice(1).replace(/ utc/g, " UTC") : "–");
   setText($("clause"), advice ? [advice.clause, advice.job].filter(Boolean).join(" · ") : "");
   setText($("since"), advice ? utc(advice.since_s) + " UTC" : "–");
   setText($("since_more"), advice ? local(advice.since_s) + " local · " + span(watchNow() - advice.since_s) + " ago" : "");
@@ -58,7 +58,7 @@ function showFacts(advice, found) {
   const left = until === null ? 0 : until - watchNow();
   setText($("until"), until === null ? (!advice ? "–" : advice.advice === "may start" ? "now" : "when allowed") : utc(until) + " UTC");
   const wait = until === null ? "" : local(until) + " local · " + (left > 0 ? "in " + span(left) : "now, if all else is met") + ". ";
-  setText($("requires"), wait + (advice && advice.requires ? "Requires: " + advice.requires : ""));
+  setText($("requires"), wait + (advice && advice.requires ? "Requires: " + advice.requires + "." : ""));
 }
 
 function showAnswer(advice, withdrawn) {

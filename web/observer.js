@@ -1,7 +1,7 @@
 // The observer's page: distance first, what was heard, what is allowed, what the source does, how well we hear.
 import {
   $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, plainWords, remains, remembered,
-  remember, setShape, setText, span, startPalette, startSound, utc, watchNow,
+  remember, sentence, setShape, setText, span, startPalette, startSound, utc, watchNow,
 } from "/page.js";
 import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
@@ -27,7 +27,7 @@ function drawAdvice(advice, withdrawn) {
   setShape($("shape"), words.shape);
   setText($("marker"), words.marker);
   setText($("words"), words.words + ".");
-  const why = advice ? advice.reason + (advice.clause ? " (" + advice.clause + ")" : "") : "Nothing is asked of the crew.";
+  const why = advice ? sentence(advice.reason) + (advice.clause ? " (" + advice.clause + ")" : "") : "Nothing is asked of the crew.";
   setText($("reason"), withdrawn ? "‘" + advice.advice + "’ is withdrawn while this lasts." : (advice ? plainWords(advice.advice, site && site.permit.activity) + " " : "") + why);
   const tags = [];
   if (advice && !advice.confirmed) tags.push("not yet confirmed");
@@ -52,7 +52,7 @@ function drawPhase(state) {
   const phase = state.phase;
   setText($("phase"), phase.phase);
   setText($("phase_since"), "since " + utc(phase.since_s) + " UTC, for " + span(watchNow() - phase.since_s));
-  setText($("phase_reason"), phase.reason + (phase.clause ? " (" + phase.clause + ")" : ""));
+  setText($("phase_reason"), sentence(phase.reason) + (phase.clause ? " (" + phase.clause + ")" : ""));
   setText($("source"), "Source: said " + phase.source_said + ", heard " + (phase.source_heard ? "working" : "silent") + (phase.released_by ? ". Released by " + phase.released_by : ""));
   $("release").hidden = !phase.release_possible;
   keyed($("timers"), state.timers, (timer) => timer.name, () => el("li", { class: "timer" }, el("p", {}, el("b"), el("span")), el("progress"), el("p", { class: "held" })), (node, timer) => {
@@ -99,7 +99,7 @@ function drawHearing(state) {
   keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
     node.classList.toggle("bad", !stream.hearing);
     setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));
-    setText(node.lastChild, ` ${stream.channels} channel${stream.channels === 1 ? "" : "s"}, ${stream.rate_hz / 1000} kHz, ${stream.input}: ${stream.health}. Unheard so far: ${span(stream.unheard_s)}.`);
+    setText(node.lastChild, ` ${stream.channels} channel${stream.channels === 1 ? "" : "s"}, ${stream.rate_hz / 1000} kHz, ${stream.input}${stream.health ? ": " + stream.health : ""}. Unheard so far: ${span(stream.unheard_s)}.`);
   });
   const record = state.recording;
   setText($("recording"), record.recording ? "Recording: entry " + record.entry + ", complete to " + utc(record.committed_s) + " UTC." : "NOT RECORDING: " + record.text);

@@ -179,6 +179,15 @@ export function metres(m) {
 export function hertz(hz) {
   return hz >= 1000 ? (hz / 1000).toFixed(hz < 9950 ? 1 : 0).replace(/\.0$/, "") + " kHz" : Math.round(hz) + " Hz";
 }
+/** "20–173 kHz", "20 Hz–2 kHz". */
+export function band(low_hz, high_hz) {
+  const [low, high] = [hertz(low_hz), hertz(high_hz)];
+  return (low.endsWith(" kHz") && high.endsWith(" kHz") ? low.slice(0, -4) : low) + "–" + high;
+}
+/** A clause of the watch as a sentence's start. */
+export function sentence(text) {
+  return text.charAt(0).toUpperCase() + text.slice(1);
+}
 
 /** What is wrong with the link, the watch, the hearing and the record; `grave` ones withdraw 'carry on' and 'may start'. */
 export function faults() {

@@ -1,6 +1,6 @@
 // Strips of sound: low, middle, high band. Time runs along, loudness is shade, above what is usual in its row;
 // calls are marks in the margin below, impulses ticks, unheard time hatching.
-import { el, hertz, keyed, link, local, setText, utc, watchNow } from "/page.js";
+import { band as bandText, el, hertz, keyed, link, local, setText, utc, watchNow } from "/page.js";
 
 const MARGIN = 20; // of the marks, in pixels at 15 px letters
 const KEEP_S = 1800;
@@ -111,23 +111,36 @@ function paintCall(context, call, x1, x2, y, ratio) {
   context.stroke();
 }
 
+function callsIn(kept, start, end) {
+  const middle = (call) => Math.sqrt(call.low_hz * call.high_hz);
+  return [...calls.values()]
+    .filter((call) => call.stream === stream && call.end_s >= start && call.start_s <= end && middle(call) >= kept.low_hz && middle(call) < kept.high_hz)
+    .sort((a, b) => a.start_s - b.start_s);
+}
+
 function paintMargin(canvas, kept, start, end, shade) {
   const context = canvas.getContext("2d"), ratio = unitOf(canvas);
   const top = canvas.height - MARGIN * ratio, x = (s) => ((s - start) / (end - start)) * canvas.width;
   context.strokeStyle = context.fillStyle = shade.ink;
   context.font = `${11 * ratio}px system-ui, sans-serif`;
   context.textBaseline = "middle";
-  let free = -1;
-  for (const call of [...calls.values()].sort((a, b) => a.start_s - b.start_s)) {
-    const middle = Math.sqrt(call.low_hz * call.high_hz);
-    if (call.stream !== stream || call.end_s < start || call.start_s > end || middle < kept.low_hz || middle >= kept.high_hz) continue;
-    const x1 = x(call.start_s), x2 = x(call.end_s), y = top + 10 * ratio;
+  const y = top + 10 * ratio;
+  const party = []; // marks close together share one name
+  for (const call of callsIn(kept, start, end)) {
+    const x1 = x(call.start_s), x2 = Math.max(x(call.end_s), x1 + 6 * ratio), last = party[party.length - 1];
     paintCall(context, call, x1, x2, y, ratio);
-    const after = Math.max(x2, x1 + 6 * ratio) + 5 * ratio;
-    if (x1 < free) continue;
-    context.fillText(call.group === "unknown" ? call.class : call.group, after, y);
-    free = after + context.measureText(call.group).width + 8 * ratio;
+    const name = call.group === "unknown" ? call.class : call.group;
+    if (last && x1 < last.x2 + 12 * ratio && last.name === name) last.x2 = Math.max(last.x2, x2);
+    else party.push({ name, x1, x2 });
   }
+  let free = 0;
+  party.forEach((marks, i) => {
+    const long = context.measureText(marks.name).width, gap = 5 * ratio;
+    const next = i + 1 < party.length ? party[i + 1].x1 : canvas.width;
+    const at = marks.x2 + gap + long <= next ? marks.x2 + gap : marks.x1 - gap - long;
+    if (at >= free) context.fillText(marks.name, at, y);
+    free = Math.max(marks.x2, at + long) + gap;
+  });
   context.fillStyle = shade.soft;
   for (const impulse of impulses.values())
     if (impulse.stream === stream && impulse.time_s >= start) context.fillRect(x(impulse.time_s), top, 1.5 * ratio, 4 * ratio);
@@ -153,8 +166,7 @@ function remember() {
 }
 
 function describe(kept, name, start, end) {
-  const marks = [...calls.values()].filter((call) => call.stream === stream && call.end_s >= start && Math.sqrt(call.low_hz * call.high_hz) >= kept.low_hz && Math.sqrt(call.low_hz * call.high_hz) < kept.high_hz);
-  return `${name} band, ${hertz(kept.low_hz)} to ${hertz(kept.high_hz)}, ${marks.length} calls from ${utc(start)} to ${utc(end)} UTC`;
+  return `${name} band, ${hertz(kept.low_hz)} to ${hertz(kept.high_hz)}, ${callsIn(kept, start, end).length} calls from ${utc(start)} to ${utc(end)} UTC`;
 }
 
 export function drawStrips() {
@@ -170,7 +182,7 @@ export function drawStrips() {
       return;
     }
     const kept = bands.get(name), canvas = node.lastChild, ratio = window.devicePixelRatio || 1;
-    setText(node.firstChild.lastChild, hertz(kept.low_hz) + "–" + hertz(kept.high_hz));
+    setText(node.firstChild.lastChild, bandText(kept.low_hz, kept.high_hz));
     const width = Math.round(canvas.clientWidth * ratio), height = Math.round(canvas.clientHeight * ratio);
     if (width === 0) return;
     if (canvas.width !== width || canvas.height !== height) [canvas.width, canvas.height] = [width, height];
@@ -183,7 +195,7 @@ export function drawStrips() {
 function listCalls() {
   if (!link.state) return;
   keyed(document.getElementById("calls"), link.state.calls.slice(0, 12), (call) => call.id, () => el("li"), (node, call) =>
-    setText(node, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}, ${hertz(call.low_hz)}–${hertz(call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
+    setText(node, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}, ${bandText(call.low_hz, call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
       (call.n_pulses ? `, ${call.n_pulses} pulses` : "") + `, ${call.snr_db.toFixed(0)} dB above the background, ${call.level_db.toFixed(0)} dB${call.relative ? " rel." : " re 1 µPa"}, channel ${call.channel}`));
 }
 

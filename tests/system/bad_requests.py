@@ -230,6 +230,20 @@ def many(server):
         s.close()
 
 
+def examples(server):
+    """The curl lines of docs/http.md do what it says."""
+    with open(os.path.join(os.path.dirname(os.path.abspath(__file__)), "../../docs/http.md")) as file:
+        text = file.read().replace("\\\n", "")
+    commands = [line.strip() for line in text.splitlines() if line.startswith("    curl ")]
+    check(len(commands) == 5, "docs/http.md has an example of each endpoint", commands)
+    for command in commands:
+        done = subprocess.run("timeout 2.5 " + command.replace(":8470", ":%d" % server.port), shell=True, capture_output=True, text=True)
+        if "/api/events" in command:
+            check("event: state\ndata: {" in done.stdout and "event: beat\ndata: {" in done.stdout, "example: " + command[:60], done.stdout[:200])
+        else:
+            check(done.returncode == 0 and "error" not in json.loads(done.stdout), "example: " + command[:60], done.stdout[:200])
+
+
 def port_in_use(server):
     other = subprocess.run([PROGRAM, str(server.port)], stdin=subprocess.DEVNULL, capture_output=True, text=True, timeout=5)
     check(other.returncode == 1 and "127.0.0.1 port %d" % server.port in other.stderr and "another program" in other.stderr,
@@ -258,6 +272,7 @@ def main():
         for part in (bodies, methods_and_paths, origins, slow_senders, many):
             part(server)
             check(serves(server), "the service goes on after: " + part.__name__)
+        examples(server)
         port_in_use(server)
         stops(server)
     finally:
