@@ -86,7 +86,8 @@ $(BUILD)/hushwatch-capture: $(patsubst %.c,$(BUILD)/%.o,$(wildcard daemon/captur
 # ---- tests: every C file in a test folder is a program, every .sh and .py in it a script
 $(BUILD)/tests/%: $(BUILD)/tests/%.o $(BUILD)/libsupport.a $(ARCHIVES)
 	$(CC) $(LDFLAGS) -o $@ $^ -lcmocka $(DAEMON_LIBS)
-$(BUILD)/tests/unit/create_failures: LDFLAGS += -Wl,--wrap=malloc,--wrap=calloc,--wrap=realloc,--wrap=aligned_alloc
+WRAPPED = malloc calloc realloc aligned_alloc free fftwf_alloc_real fftwf_alloc_complex fftwf_free
+$(BUILD)/tests/unit/create_failures: LDFLAGS += $(WRAPPED:%=-Wl,--wrap=%)
 $(BUILD)/libasound_module_pcm_feed.so: tests/support/pcm_feed.c
 	@mkdir -p $(@D)
 	gcc -O2 -std=gnu11 -shared -fPIC -DPIC $< -o $@ -lasound
