@@ -1,0 +1,178 @@
+/* Chains of pulses, by dynamic programming over pairs. */
+#include "base/units.h"
+#include "call/trains_inside.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* Of the pulses around, this share counts as strays where chains are only compared: most may be the chain's
+ * own. */
+#define RANK_SHARE 0.25
+
+int trains_level_index(const struct node *node)
+{
+    return (int)fmin(LEVELS - 1, fmax(0, node->level_db / LEVEL_STEP_DB - 1));
+}
+
+/* Takes a link into a pulse's list, which keeps the best few. */
+static void keep(struct node *node, const struct link *link)
+{
+    uint32_t place = node->n_links;
+    if (place == LINKS) {
+        place = 0;
+        for (uint32_t i = 1; i < LINKS; i++)
+            if (node->links[i].rank < node->links[place].rank)
+                place = i;
+        if (node->links[place].rank >= link->rank)
+            return;
+    } else {
+        node->n_links++;
+    }
+    node->links[place] = *link;
+}
+
+static double ln_density(const struct trains *trains, int spread, double d)
+{
+    double scaled = d / trains->deviation[spread];
+    return trains->ln_peak[spread] - scaled * scaled / 2;
+}
+
+/* How many intervals an interval so much longer (ln) than the one before most likely is. */
+static uint32_t likeliest_steps(const struct trains *trains, double ratio)
+{
+    if (ratio < 0.4) /* far below ln 2 for every jitter */
+        return 1;
+    uint32_t best = 1;
+    double most = -INFINITY;
+    for (uint32_t m = 1; m <= MAX_STEP; m++) {
+        double ln = ln_density(trains, WIDE, ratio - trains->ln_m[m]) + trains->ln_steps[m];
+        if (ln > most) {
+            most = ln;
+            best = m;
+        }
+    }
+    return best;
+}
+
+/* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
+static void link_from(const struct trains *trains, struct node *node, uint64_t number, double ln_rate)
+{
+    const struct train_shape *shape = &trains->call_class.train;
+    const struct node *from = trains_node(trains, number);
+    double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
+    double ln_interval = log(interval);
+    double level_cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
+    struct link best = {.rank = -INFINITY};
+    if (interval <= shape->max_interval_s && from->owner == 0) {
+        double score = -ln_interval - trains->ln_range - level_cost;
+        best = (struct link){.previous = number,
+                             .n = 2,
+                             .steps = 1,
+                             .ln_interval = ln_interval,
+                             .gain = score,
+                             .score = {score, score},
+                             .ln_rates = ln_rate,
+                             .rank = score - ln_rate};
+    }
+    for (uint32_t i = 0; i < from->n_links; i++) {
+        const struct link *link = &from->links[i];
+        if (from->owner && link->train != from->owner)
+            continue;
+        double ratio = ln_interval - link->ln_interval;
+        uint32_t m = likeliest_steps(trains, ratio);
+        double d = ratio - trains->ln_m[m];
+        if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE])
+            continue;
+        double common = trains->ln_steps[m] - ln_interval - level_cost;
+        double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
+        double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
+        double rank = fmax(score[NARROW], score[WIDE]) - link->ln_rates - ln_rate;
+        if (rank <= best.rank)
+            continue;
+        best = (struct link){.previous = number,
+                             .previous_link = i,
+                             .train = link->train,
+                             .n = link->n + 1,
+                             .steps = m,
+                             .ln_interval = ln_interval - trains->ln_m[m],
+                             .ln_ratio = d,
+                             .gain = fmax(gain[NARROW], gain[WIDE]),
+                             .score = {score[NARROW], score[WIDE]},
+                             .ln_rates = link->ln_rates + ln_rate,
+                             .rank = rank};
+    }
+    if (best.rank > -INFINITY)
+        keep(node, &best);
+}
+
+uint32_t trains_walk(struct trains *trains, uint64_t number, uint32_t link, uint64_t until, uint32_t most)
+{
+    uint32_t n = 0;
+    while (n < most && trains_remember(trains, number) && (until == UINT64_MAX || number > until)) {
+        const struct node *node = trains_node(trains, number);
+        trains->members[n] = number;
+        trains->chain_link[n++] = link;
+        if (link == UINT32_MAX)
+            break;
+        const struct link *step = &node->links[link];
+        number = step->previous;
+        link = step->n == 2 ? UINT32_MAX : step->previous_link;
+    }
+    return n;
+}
+
+double trains_walked_jitter(const struct trains *trains, uint32_t n)
+{
+    double sum = 0;
+    uint32_t count = 0;
+    for (uint32_t i = 0; i < n; i++) {
+        if (trains->chain_link[i] == UINT32_MAX)
+            continue;
+        const struct link *link = &trains_node(trains, trains->members[i])->links[trains->chain_link[i]];
+        if (link->n < 3)
+            continue;
+        sum += link->ln_ratio * link->ln_ratio;
+        count++;
+    }
+    return count ? sqrt(sum / count) : 0;
+}
+
+/* Links the newest pulse to those before. */
+static void link_back(const struct trains *trains, struct node *node)
+{
+    const struct train_shape *shape = &trains->call_class.train;
+    double ln_rate = log(trains_noise_rate(trains, node->snr) +
+                         RANK_SHARE * trains->rate_above[trains_level_index(node)] + RATE_FLOOR);
+    for (uint64_t k = trains->n_pulses - 1; k > 0 && trains_remember(trains, k - 1); k--) {
+        const struct node *from = trains_node(trains, k - 1);
+        double gap = node->time_s - from->time_s;
+        if (gap > MAX_STEP * shape->max_interval_s)
+            break;
+        if (gap >= shape->min_interval_s && from->owner != HIDDEN &&
+            fabs(node->level_db - from->level_db) <= LEVEL_GATE_DB)
+            link_from(trains, node, k - 1, ln_rate);
+    }
+}
+
+void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t *rejections)
+{
+    struct node *node = trains_node(trains, trains->n_pulses);
+    if (trains->n_pulses >= RING && node->owner == 0)
+        rejections[REJECT_NO_RHYTHM]++;
+    double time_s = pulse->frame / trains->rate_hz;
+    double memory_s = RATE_INTERVALS * trains->call_class.train.max_interval_s;
+    double gap = trains->n_pulses ? time_s - trains_node(trains, trains->n_pulses - 1)->time_s : 0;
+    double keep_share = exp(-gap / memory_s), level_db = units_power_db(pulse->snr);
+    for (int l = 0; l < LEVELS; l++)
+        trains->rate_above[l] =
+            trains->rate_above[l] * keep_share + (level_db >= l * LEVEL_STEP_DB ? 1 / memory_s : 0);
+    node->time_s = time_s;
+    node->frame = pulse->frame;
+    node->snr = pulse->snr;
+    node->level_db = level_db;
+    node->energy = pulse->energy;
+    node->owner = 0;
+    node->n_links = 0;
+    trains->n_pulses++;
+    link_back(trains, node);
+}
