@@ -124,7 +124,7 @@ function sounds(state, advice, withdrawn, found) {
   const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
   const crew = adviceFor(state, "crew");
   const wants = words && words.alert && !(crew && crew.acknowledged);
-  alertSound.set(wants ? advice.id : "", words && words.level === "stop" ? "stop" : words && words.level === "hold" ? "hold" : "go");
+  alertSound.set(wants ? advice.id : "", words && words.level === "stop" ? "stop" : words && words.level === "hold" ? "hold" : "go", !words || words.level === "go" || advice.advice === "do not start");
   faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
 }
 

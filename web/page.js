@@ -333,16 +333,16 @@ export function startSound(button) {
   setInterval(show, 1000);
   show();
 }
-/** An alarm that sounds at once when its key is new, and again every `againS` seconds while it stays. */
+/** An alarm that sounds at once when its key is new, and again every `againS` seconds while it stays (`once`: not again). */
 export class Alarm {
   constructor(againS) {
     this.againMs = againS * 1000;
     this.key = "";
     this.at = 0;
   }
-  set(key, pattern) {
+  set(key, pattern, once = false) {
     const now = performance.now();
-    if (key && (key !== this.key || now - this.at >= this.againMs)) {
+    if (key && (key !== this.key || (!once && now - this.at >= this.againMs))) {
       play(pattern);
       this.at = now;
     }
