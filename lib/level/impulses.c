@@ -29,7 +29,7 @@
 #define SHORT_FRONT_PART 0.55 /* a rectangle has 0.5 */
 #define FRONT_PART 0.4
 #define TONE_PART 0.65
-#define LEAST_DB 6.0
+#define LEAST_DB 8.0
 #define KEPT_CELLS 1400u /* of samples kept: the longest window and some */
 
 struct finder_window {
@@ -135,7 +135,8 @@ static bool is_echo(const struct impulse_finder *finder)
     if (!finder->had_one)
         return false;
     uint64_t since = finder->window.trigger - finder->last_trigger;
-    return since < NEXT || (since < ECHO && finder->window.highest < WEAKER * finder->last_highest);
+    double ratio = finder->window.highest / finder->last_highest;
+    return (since < NEXT && ratio < 1 / WEAKER) || (since < ECHO && ratio < WEAKER);
 }
 
 /* Energy falls from the onset, and a longer sound is not one tone at a time. */

@@ -10,10 +10,10 @@
  * for 60 ms, or after 1.25 s.
  *
  * What counts as an impulse (common practice, no source):
- *   strong      some band's look passes its threshold, and rms90 is 6 dB or more above the
+ *   strong      some band's look passes its threshold, and rms90 is 8 dB or more above the
  *               background of all bands
- *   single      not within 0.3 s of the impulse before, nor within 0.6 s when 6 dB weaker: echo,
- *               bubble, second arrival
+ *   single      not within 0.3 s of the impulse before unless 6 dB stronger, nor within 0.6 s when 6 dB
+ *               weaker: echo, bubble, second arrival
  *   low         at least 0.3 of its energy lies in the three bands (most of the energy of a blow,
  *               shot or charge lies below 1 kHz; the averaging alone takes 3.9 dB at 2 kHz)
  *   sudden      its 8 ms level rises by 6 dB or more within 16 ms, to within 5 dB of its highest

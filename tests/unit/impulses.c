@@ -334,6 +334,28 @@ static void an_echo_is_no_second_impulse(void **state)
     }
 }
 
+/* What comes just before a blow (a first arrival through the sea floor, another sound) does not hide it. */
+static void a_weak_arrival_before_does_not_hide_a_blow(void **state)
+{
+    (void)state;
+    static const double delays[] = {0.03, 0.1, 0.2, 0.29};
+    for (int d = 0; d < 4; d++) {
+        struct sound sound = make_sound(48000, 40, 1, 75);
+        struct random random;
+        random_reset(&random, 76);
+        for (double t = 2; t < 37; t += 3) {
+            add_blow(&sound, t - delays[d], 0.3, 0.01, &random);
+            add_blow(&sound, t, 1000, 0.03, &random);
+        }
+        find(&sound, 4096, &found, NULL);
+        uint32_t n = 0;
+        for (uint32_t i = 0; i < found.n; i++)
+            n += fabs(found.impulse[i].sel_db - 150) < 0.1;
+        assert_int_equal(n, 12);
+        free(sound.x);
+    }
+}
+
 static void clipped_and_overlapped_are_said(void **state)
 {
     (void)state;
@@ -402,6 +424,7 @@ int main(void)
         cmocka_unit_test(noise_holds_no_impulse),
         cmocka_unit_test(other_sounds_are_no_impulses),
         cmocka_unit_test(an_echo_is_no_second_impulse),
+        cmocka_unit_test(a_weak_arrival_before_does_not_hide_a_blow),
         cmocka_unit_test(clipped_and_overlapped_are_said),
         cmocka_unit_test(chunks_do_not_matter),
     };
