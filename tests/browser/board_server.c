@@ -7,6 +7,7 @@
  *   disk-full | disk-ok entries do not reach the disk | do again
  *   unrecorded | recorded   the newest advice
  *   hostile             names and reasons carry markup
+ *   no-answer           from now on notes wait 1.5 s and are not answered
  *   seconds N           watch time runs on by N seconds
  *   quit                ends (as does the end of input)
  * and prints a line "note KIND PERSON|STATION|ADVICE|ANSWER|TEXT" for each note that arrives. All figures are
@@ -34,7 +35,7 @@ struct server {
     struct watch_view watch;
     struct hearing_view hearing;
     struct random random;
-    bool frozen, hostile, disk_full;
+    bool frozen, hostile, disk_full, no_answer;
     int64_t column_ns;
     uint64_t n_notes, n_advice, n_blows;
 };
@@ -257,6 +258,8 @@ static void obey(struct server *server, const char *word)
         snprintf(hearing->unrecorded[0], FLOW_ID_SIZE, "%s", server->watch.advice[0].id);
     } else if (strcmp(word, "recorded") == 0)
         hearing->n_unrecorded = 0;
+    else if (strcmp(word, "no-answer") == 0)
+        server->no_answer = true;
     else if (strcmp(word, "hostile") == 0)
         make_hostile(server);
 }
@@ -293,6 +296,11 @@ static enum status take_note(void *context, const struct note *note, char out_id
 {
     struct server *server = context;
     pthread_mutex_lock(&server->lock);
+    if (server->no_answer) {
+        pthread_mutex_unlock(&server->lock);
+        nanosleep(&(struct timespec){.tv_sec = 1, .tv_nsec = 500000000}, NULL);
+        return STATUS_TIMEOUT;
+    }
     apply_note(server, note);
     flow_id(1, 0, "note", ++server->n_notes, out_id);
     printf("note %s %s|%s|%s|%s|%s\n", note_kind_text(note->kind), note->person, note->station, note->advice,

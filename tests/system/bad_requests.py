@@ -244,6 +244,46 @@ def examples(server):
             check(done.returncode == 0 and "error" not in json.loads(done.stdout), "example: " + command[:60], done.stdout[:200])
 
 
+def stream(server, last_id, seconds):
+    with server.connect() as s:
+        s.sendall(b"GET /api/events HTTP/1.1\r\nHost: localhost\r\nLast-Event-ID: " + last_id.encode() + b"\r\n\r\n")
+        text, start = b"", time.monotonic()
+        s.settimeout(0.2)
+        while time.monotonic() - start < seconds:
+            try:
+                text += s.recv(65536)
+            except socket.timeout:
+                pass
+        return text.decode("latin-1")
+
+
+def resumes(server):
+    server.say("freeze")
+    time.sleep(0.3)
+    state = json.loads(ask(server, "GET", "/api/state")[2])
+    here = "%d-%d" % (state["run"], state["sequence"])
+    for last_id, wanted in [(here, 0), ("%d-%d" % (state["run"], state["sequence"] - 1), 1), ("9-" + here[2:], 1), ("nonsense", 1), ("", 1)]:
+        text = stream(server, last_id, 1.3)
+        check(text.count("event: state") == wanted and text.count("event: beat") >= 1,
+              "resumed after %r of %s: %d state" % (last_id, here, wanted), text[:300])
+    server.say("thaw")
+
+
+def watch_without_answer(server):
+    server.say("no-answer")
+    time.sleep(0.2)
+    answers = []
+    threads = [threading.Thread(target=lambda: answers.append(ask(server, "POST", "/api/note", NOTE))) for _ in range(2)]
+    for thread in threads:
+        thread.start()
+    time.sleep(0.3)
+    check(serves(server), "others are served while notes wait for the watch")
+    for thread in threads:
+        thread.join()
+    check([code for code, _, _ in answers] == [503, 503] and b"look whether" in answers[0][2],
+          "a note that the watch did not answer says so", answers)
+
+
 def port_in_use(server):
     other = subprocess.run([PROGRAM, str(server.port)], stdin=subprocess.DEVNULL, capture_output=True, text=True, timeout=5)
     check(other.returncode == 1 and "127.0.0.1 port %d" % server.port in other.stderr and "another program" in other.stderr,
@@ -272,7 +312,9 @@ def main():
         for part in (bodies, methods_and_paths, origins, slow_senders, many):
             part(server)
             check(serves(server), "the service goes on after: " + part.__name__)
+        resumes(server)
         examples(server)
+        watch_without_answer(server)
         port_in_use(server)
         stops(server)
     finally:
