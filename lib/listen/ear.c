@@ -3,6 +3,8 @@
 #include <math.h>
 #include <stdlib.h>
 
+#define GATE_MEMORY_S 3.0 /* an impulse is known at most 1.3 s after its onset */
+
 static enum status create_parts(const struct ear_setup *setup, struct ear *ear)
 {
     enum status status = meter_create(setup->rate_hz, ear->relative, &ear->meter);
@@ -11,6 +13,8 @@ static enum status create_parts(const struct ear_setup *setup, struct ear *ear)
     if (status == STATUS_OK && setup->finds_impulses)
         status = impulse_finder_create(setup->rate_hz, calibration_pa_per_unit(&setup->calibration),
                                        &ear->impulses);
+    if (status == STATUS_OK && setup->gates)
+        status = gate_create(setup->rate_hz, GATE_MEMORY_S, &ear->gate);
     if (status == STATUS_OK && ear->listens)
         status = tones_create(setup->classes, setup->n_classes, setup->rate_hz, &ear->tones);
     if (status == STATUS_OK && ear->listens)
@@ -40,6 +44,7 @@ void ear_destroy(struct ear *ear)
     meter_destroy(ear->meter);
     health_destroy(ear->health);
     impulse_finder_destroy(ear->impulses);
+    gate_destroy(ear->gate);
     tones_destroy(ear->tones);
     pulses_destroy(ear->pulses);
     free(ear->samples);
@@ -61,9 +66,18 @@ static void take_level(void *context, const struct found_level *level)
     health_take_level(ear->health, level, &faults);
 }
 
-static void take_impulse(void *context, const struct found_impulse *impulse)
+static void take_masked(void *context, const struct gate_masked *masked)
 {
     const struct ear *ear = context;
+    ear->sink.masked(ear->sink.context, ear->channel, masked);
+}
+
+static void take_impulse(void *context, const struct found_impulse *impulse)
+{
+    struct ear *ear = context;
+    const struct gate_masked_sink masked = {take_masked, ear};
+    if (ear->gate)
+        gate_push_impulse(ear->gate, impulse->onset_frame, impulse->t90_s, &masked);
     ear->sink.impulse(ear->sink.context, ear->channel, impulse);
 }
 
@@ -93,10 +107,13 @@ bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_chann
     const struct level_sink levels = {take_level, ear};
     const struct impulse_sink impulses = {take_impulse, ear};
     const struct found_sink calls = {take_call, ear};
+    const struct gate_masked_sink masked = {take_masked, ear};
     uint32_t bad = pick_channel(ear, frames, n, n_channels);
     ear->n_not_finite += bad;
     health_push(ear->health, ear->samples, n, &faults);
     meter_push(ear->meter, ear->pascals, n, &levels);
+    if (ear->gate)
+        gate_push(ear->gate, ear->pascals, n, &masked);
     if (ear->impulses)
         impulse_finder_push(ear->impulses, ear->pascals, n, &impulses);
     if (ear->listens) {
@@ -132,6 +149,8 @@ void ear_reset(struct ear *ear, uint64_t next_frame)
     health_reset(ear->health, next_frame);
     if (ear->impulses)
         impulse_finder_reset(ear->impulses, next_frame);
+    if (ear->gate)
+        gate_reset(ear->gate, next_frame);
     if (ear->listens) {
         tones_reset(ear->tones, next_frame);
         pulses_reset(ear->pulses, next_frame);

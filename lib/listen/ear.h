@@ -4,6 +4,7 @@
 
 #include "base/status.h"
 #include "call/found.h"
+#include "call/gate.h"
 #include "call/pulses.h"
 #include "call/tones.h"
 #include "level/calibration.h"
@@ -19,6 +20,7 @@ struct ear_sink {
     void (*fault)(void *context, uint32_t channel, const struct found_fault *fault);
     void (*impulse)(void *context, uint32_t channel, const struct found_impulse *impulse);
     void (*call)(void *context, uint32_t channel, const struct found_call *call);
+    void (*masked)(void *context, uint32_t channel, const struct gate_masked *masked);
     void *context;
 };
 
@@ -33,7 +35,8 @@ struct ear {
     uint64_t n_not_finite;
     struct meter *meter;
     struct health *health;
-    struct impulse_finder *impulses; /* NULL on channels that are not measured for impulses */
+    struct impulse_finder *impulses; /* NULL on channels whose impulses nobody asks for */
+    struct gate *gate;               /* NULL on all but the channel that gates the stream */
     struct tones *tones;             /* NULL on channels that do not listen, as is pulses */
     struct pulses *pulses;
     struct ear_sink sink; /* borrowed context */
@@ -45,6 +48,7 @@ struct ear_setup {
     uint32_t max_frames; /* of a block */
     struct calibration calibration;
     bool finds_impulses;
+    bool gates;                       /* says what the impulses that it finds cover */
     const struct call_class *classes; /* borrowed */
     uint32_t n_classes;
     struct ear_sink sink;

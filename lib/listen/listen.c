@@ -21,7 +21,10 @@ struct listen {
     uint64_t next_frame, block_first, block_end;
     struct ear ears[FLOW_MAX_CHANNELS];
     struct strips *strips;
-    uint32_t strip_channel; /* 0: none */
+    uint32_t strip_channel;                   /* the first that listens; 0: none */
+    uint32_t impulse_channel;                 /* whose impulses are given; 0: none */
+    uint32_t gate_channel;                    /* whose impulses mask what the stream hears; 0: none */
+    uint64_t n_hidden[CATALOGUE_MAX_CLASSES]; /* calls that the own source covered */
     struct joiner joiner;
     uint64_t counters[EVENT_NOTE + 1];
     const struct event_sink *sink; /* of the push in progress */
@@ -130,6 +133,8 @@ static void take_fault(void *context, uint32_t channel, const struct found_fault
 static void take_impulse(void *context, uint32_t channel, const struct found_impulse *found)
 {
     struct listen *listen = context;
+    if (channel != listen->impulse_channel)
+        return;
     struct event *event = add_event(listen, EVENT_IMPULSE, found->known_frame);
     event->as.impulse = (struct impulse){.channel = channel,
                                          .time_ns = time_at(listen, found->onset_frame),
@@ -146,6 +151,34 @@ static void take_impulse(void *context, uint32_t channel, const struct found_imp
                                          .whose = IMPULSE_UNKNOWN};
 }
 
+/* What one channel's source covers it covers for the stream, whose listening channels are close together. */
+static void take_masked(void *context, uint32_t channel, const struct gate_masked *masked)
+{
+    struct listen *listen = context;
+    (void)channel;
+    for (uint32_t i = 0; i < listen->setup.n_channels; i++)
+        if (listen->ears[i].listens)
+            pulses_hide(listen->ears[i].pulses, masked->start_frame, masked->end_frame, masked->low_hz,
+                        masked->high_hz);
+    struct event *event = add_event(listen, EVENT_UNHEARD, listen->block_end - 1);
+    event->as.unheard = (struct unheard){.channel = 0,
+                                         .low_hz = masked->low_hz,
+                                         .high_hz = masked->high_hz,
+                                         .start_ns = time_at(listen, masked->start_frame),
+                                         .end_ns = time_at(listen, masked->end_frame),
+                                         .cause = UNHEARD_OWN_SOURCE};
+}
+
+static bool is_hidden(struct listen *listen, const struct found_call *found)
+{
+    if (listen->gate_channel == 0 ||
+        !gate_hides(listen->ears[listen->gate_channel - 1].gate, found->start_frame, found->end_frame,
+                    found->low_hz, found->high_hz))
+        return false;
+    listen->n_hidden[found->class_index]++;
+    return true;
+}
+
 static void take_call(void *context, uint32_t channel, const struct found_call *found)
 {
     struct listen *listen = context;
@@ -157,7 +190,7 @@ static void take_joined(void *context, const struct joined_call *joined)
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
     const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
-    if (!class->animal)
+    if (!class->animal || is_hidden(listen, found))
         return;
     struct event *event = add_event(listen, EVENT_CALL, found->known_frame);
     struct call *call = &event->as.call;
@@ -181,17 +214,24 @@ static void take_joined(void *context, const struct joined_call *joined)
     memcpy(call->class_name, class->name, sizeof call->class_name);
 }
 
-/* The channel whose impulses are measured: the first that only measures, else the first that does both. */
-static uint32_t impulse_channel(const struct listen_setup *setup)
+/* Impulses are given of the first channel that only measures, else of the first that does both. The first
+ * channel that listens masks the stream: a blow reaches it at another time than a far measuring channel. */
+static void choose_channels(struct listen *listen)
 {
-    uint32_t both = 0;
-    for (uint32_t i = 0; i < setup->n_channels; i++) {
-        if (setup->calibration[i].role == ROLE_MEASURE)
-            return i + 1;
-        if (setup->calibration[i].role == ROLE_BOTH && both == 0)
-            both = i + 1;
+    const struct listen_setup *setup = &listen->setup;
+    uint32_t measure = 0, both = 0;
+    for (uint32_t i = setup->n_channels; i > 0; i--) {
+        enum channel_role role = setup->calibration[i - 1].role;
+        if (role == ROLE_MEASURE)
+            measure = i;
+        else
+            listen->strip_channel = i;
+        if (role == ROLE_BOTH)
+            both = i;
     }
-    return both;
+    listen->impulse_channel = measure ? measure : both;
+    bool has_source = listen->impulse_channel > 0 && setup->catalogue->n_classes > 0;
+    listen->gate_channel = has_source ? listen->strip_channel : 0;
 }
 
 static enum status create_ears(struct listen *listen)
@@ -201,18 +241,17 @@ static enum status create_ears(struct listen *listen)
                             .max_frames = flow_block_frames(setup->rate_hz),
                             .classes = setup->catalogue->classes,
                             .n_classes = setup->catalogue->n_classes,
-                            .sink = {take_level, take_fault, take_impulse, take_call, listen}};
+                            .sink = {take_level, take_fault, take_impulse, take_call, take_masked, listen}};
     uint32_t listening = 0;
     for (uint32_t i = 0; i < setup->n_channels; i++) {
         ear.channel = i + 1;
         ear.calibration = setup->calibration[i];
-        ear.finds_impulses = ear.channel == impulse_channel(setup);
+        ear.gates = ear.channel == listen->gate_channel;
+        ear.finds_impulses = ear.gates || ear.channel == listen->impulse_channel;
         enum status status = ear_create(&ear, &listen->ears[i]);
         if (status != STATUS_OK)
             return status;
         listening += listen->ears[i].listens;
-        if (listen->strip_channel == 0 && listen->ears[i].listens)
-            listen->strip_channel = i + 1;
     }
     joiner_reset(&listen->joiner, listening > 1 ? (uint64_t)(HOLD_S * setup->rate_hz) : 0);
     return STATUS_OK;
@@ -227,6 +266,7 @@ enum status listen_create(const struct listen_setup *setup, struct listen **out)
     if (!listen)
         return STATUS_NO_MEMORY;
     listen->setup = *setup;
+    choose_channels(listen);
     enum status status = create_ears(listen);
     if (status == STATUS_OK && listen->strip_channel > 0 && setup->columns.take)
         status =
@@ -339,4 +379,6 @@ void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_M
             for (uint32_t r = 0; r < REJECT_COUNT; r++)
                 out[c][r] += one[c][r];
     }
+    for (uint32_t c = 0; c < CATALOGUE_MAX_CLASSES; c++)
+        out[c][REJECT_OWN_SOURCE] += listen->n_hidden[c];
 }
