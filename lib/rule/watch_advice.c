@@ -250,7 +250,7 @@ static void add_end(const struct watch *watch, const struct advice_key *old, str
                       (old->ground == GROUND_UNALLOWED && wanted->key.ground != GROUND_UNALLOWED);
     if (!of_contact || watch->let_go_ns != watch->now_ns)
         return;
-    struct why ended = watch->let_go;
+    struct why ended = watch->let_go; /* its text and causes first */
     for (uint32_t i = 0; i < wanted->why.n_causes; i++)
         why_add_cause(&ended, wanted->why.causes[i]);
     snprintf(ended.text, sizeof ended.text, "%.150s; %.100s", watch->let_go.text, wanted->why.text);
@@ -269,8 +269,10 @@ static void settle_station(struct watch *watch, enum station station)
     struct watch_advice *present = in_force(watch, station);
     bool same = present && key->word == wanted.key.word && key->ground == wanted.key.ground &&
                 key->contact == wanted.key.contact && key->confirmed == wanted.key.confirmed;
-    if (!same)
+    if (!same) {
         add_end(watch, key, &wanted);
+        why_add_cause(&wanted.why, watch->recent.causes[0]);
+    }
     fill(watch, station, &wanted, &advice);
     if (same) { /* people see the newest figures; the situation is the same, and so is the advice */
         memcpy(advice.causes, present->advice.causes, sizeof advice.causes);

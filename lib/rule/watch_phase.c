@@ -170,14 +170,12 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
                   watch->permit->break_minutes);
     else if (watch->phase == PHASE_POST_WATCH)
         why_reset(why, watch->permit->pre_watch_clause, "the watch goes on after the work: %.200s", names);
-    else if (watch->phase == PHASE_READY && effort_kept(watch, &missing)) {
+    else if (watch->phase == PHASE_READY && effort_kept(watch, &missing))
         why_reset(why, watch->permit->pre_watch_clause,
                   "part of the pre-watch was not kept or not heard: it is no longer complete");
-        why_add_cause(why, watch->recent.causes[0]);
-    } else if (watch->phase == PHASE_READY) {
+    else if (watch->phase == PHASE_READY)
         why_reset(why, watch->permit->pre_watch_clause, "%s", missing);
-        why_add_cause(why, watch->recent.causes[0]);
-    } else
+    else
         *why = watch->let_go;
 }
 
@@ -190,10 +188,10 @@ static void make_reason(const struct watch *watch, enum phase to, struct why *wh
         why_ready(watch, why);
     else if (to == PHASE_PRE_WATCH)
         why_pre_watch(watch, why);
-    else if (to == PHASE_OFF) {
+    else if (to == PHASE_OFF)
         why_reset(why, watch->permit->pre_watch_clause, "nobody keeps the watch");
+    if (watch->recent.n_causes)
         why_add_cause(why, watch->recent.causes[0]);
-    }
     why_add_cause(why, watch->phase_id);
 }
 

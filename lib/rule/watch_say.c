@@ -13,6 +13,7 @@ void why_reset(struct why *why, const char *clause, const char *format, ...)
     vsnprintf(text, sizeof text, format, arguments);
     va_end(arguments);
     why->n_causes = 0;
+    why->causes[0][0] = '\0';
     memcpy(why->text, text, sizeof why->text);
     snprintf(why->clause, sizeof why->clause, "%s", clause);
 }
