@@ -6,7 +6,8 @@
 #define HOLD_S 0.25 /* of sound: the most that a decision waits for */
 #define HOLD_MARKS                                                                                           \
     16 /* so many agree to the frame: each is late by less than half a frame half of the time */
-#define LATEST_BINS 16
+#define LATEST_BINS 6     /* so few that a wrong slope does not live on the frames that it declares */
+#define MANY 8            /* points from which on the second earliest is meant, not the earliest */
 #define SLOPE_SPAN_S 1.0  /* below it the nominal rate is better than a measured one */
 #define MAX_SLOPE 500e-6  /* a sound device's crystal is within a tenth of it; common practice, no source */
 #define LEAST_STEP_S 1e-3 /* a step without the driver's flag is a loss from here up */
@@ -94,6 +95,35 @@ static void fit(struct account *a)
     a->offset_s = median(heights, n);
 }
 
+static void begin_bin(struct account *a, struct account_point p)
+{
+    if (a->n_bins > 0) {
+        if (a->bin_points < MANY)
+            a->bins[a->n_bins - 1] = a->bin_least;
+        fit(a);
+    }
+    if (a->n_bins == ACCOUNT_BINS)
+        memmove(a->bins, a->bins + 1, --a->n_bins * sizeof a->bins[0]);
+    a->bins[a->n_bins++] = p;
+    a->bin_least = p;
+    a->bin_points = 1;
+    a->bin_end_s = p.x_s + BIN_S;
+}
+
+/* A bin's point is the second earliest of many: one stamp that is too early does no harm. */
+static void add_to_bin(struct account *a, struct account_point p)
+{
+    struct account_point *second = &a->bins[a->n_bins - 1];
+    double r = above_line(a, p);
+    a->bin_points++;
+    if (r < above_line(a, a->bin_least)) {
+        *second = a->bin_least;
+        a->bin_least = p;
+    } else if (a->bin_points == 2 || r < above_line(a, *second)) {
+        *second = p;
+    }
+}
+
 static void add_point(struct account *a, struct account_point p)
 {
     double r = above_line(a, p);
@@ -106,16 +136,10 @@ static void add_point(struct account *a, struct account_point p)
         a->bin_end_s = p.x_s;
     }
     a->noise_s += NOISE_WEIGHT * (fmin(fabs(r), 0.05) - a->noise_s);
-    if (p.x_s >= a->bin_end_s) {
-        if (a->n_bins > 0)
-            fit(a);
-        if (a->n_bins == ACCOUNT_BINS)
-            memmove(a->bins, a->bins + 1, --a->n_bins * sizeof a->bins[0]);
-        a->bins[a->n_bins++] = p;
-        a->bin_end_s = p.x_s + BIN_S;
-    } else if (r < above_line(a, a->bins[a->n_bins - 1])) {
-        a->bins[a->n_bins - 1] = p;
-    }
+    if (p.x_s >= a->bin_end_s)
+        begin_bin(a, p);
+    else
+        add_to_bin(a, p);
     if (a->n_bins == 1) /* no line yet: the earliest point is the best guess */
         a->offset_s = fmin(a->offset_s, p.y_s);
 }
@@ -153,11 +177,12 @@ static void decide(struct account *a)
 {
     if (a->n_held == 0)
         return;
-    double frames = round(a->held_least_s * a->rate_hz / (1 + a->slope));
+    double step_s = a->n_held < MANY ? a->held_least_s : a->held_second_s;
+    double frames = round(step_s * a->rate_hz / (1 + a->slope));
     uint64_t lost = 0;
     if (a->absent && frames < 0)
         a->skip = (uint64_t)-frames;
-    else if (frames > 0 && (a->absent || a->held[0].overrun || a->held_least_s > step_limit_s(a)))
+    else if (frames > 0 && (a->absent || a->held[0].overrun || step_s > step_limit_s(a)))
         lost = (uint64_t)frames;
     a->absent = false;
     accept(a, &a->held[0], lost);
@@ -172,6 +197,9 @@ static void hold(struct account *a, const struct ring_mark *mark)
     for (uint32_t i = 0; i < a->n_held; i++)
         frame += a->held[i].dropped_before + a->held[i].n_frames;
     double r = above_line(a, point_of(a, mark, frame + mark->dropped_before));
+    a->held_second_s = a->n_held == 0   ? r
+                       : a->n_held == 1 ? fmax(a->held_least_s, r)
+                                        : fmin(a->held_second_s, fmax(a->held_least_s, r));
     a->held_least_s = a->n_held == 0 ? r : fmin(a->held_least_s, r);
     a->held[a->n_held++] = *mark;
     double span_s = (double)(mark->ns - a->held[0].ns) * 1e-9;

@@ -3,9 +3,9 @@
  * What the ring had no room for is counted by the ring. What the driver lost is told by nobody: PortAudio's
  * overrun flag has no count and may be missing. So frames are counted against the clock: the sampling times
  * of frames received lie on a straight line (the device's clock), and what is measured of them lies on it or,
- * as a rule, later. Of each quarter of a second the earliest point counts; a robust line through these is the
- * clock; a lasting step up from it is the number of frames lost. The step is measured between the earliest
- * points of equally many marks before and after it.
+ * as a rule, later. Of each quarter of a second the second earliest point counts; a robust line through these
+ * is the clock; a lasting step up from it is the number of frames lost. The step is measured between the
+ * earliest points of equally many marks before and after it.
  *
  * Method: Siegel, "Robust regression using repeated medians", Biometrika 69 (1982), for the line, since a
  * thread that is put to sleep between two readings can stamp far too late, and sometimes too early.
@@ -43,11 +43,13 @@ struct account {
     bool has_line;
     double offset_s, slope; /* the line: y = offset_s + slope x */
     double noise_s;         /* mean distance of points above the line */
-    double bin_end_s;
+    double bin_end_s;       /* of the bin that is being filled, the last one */
+    uint32_t bin_points;
+    struct account_point bin_least;
     uint32_t n_bins;
     struct account_point bins[ACCOUNT_BINS]; /* oldest first */
     uint32_t n_held;
-    double held_least_s;
+    double held_least_s, held_second_s; /* the two earliest of the held marks, above the line */
     struct ring_mark held[ACCOUNT_MAX_HELD];
     uint32_t first_piece, n_pieces;
     struct account_piece pieces[ACCOUNT_MAX_PIECES];

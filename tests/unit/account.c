@@ -16,6 +16,7 @@ struct device {
     bool tells_age;      /* the driver says how old the first frame is */
     double late_s;       /* mean delay between reading the device's position and stamping it */
     double preempted;    /* the share of blocks whose stamp is late by milliseconds */
+    double early;        /* the share of blocks whose stamp is early, by up to 0.1 ms */
     uint64_t next;       /* number of the next frame, on the device's own clock */
     uint64_t ring_frame; /* number of the next frame in the ring */
 };
@@ -37,6 +38,8 @@ static struct ring_mark next_mark(struct device *d, uint32_t overrun, uint64_t d
     double stamp_s = read_s + d->late_s * random_exponential(&d->random);
     if (random_uniform(&d->random) < d->preempted)
         stamp_s += 0.01 * random_exponential(&d->random);
+    if (random_uniform(&d->random) < d->early)
+        stamp_s -= 1e-4 * random_uniform(&d->random);
     mark.ns = ORIGIN_NS + (int64_t)(stamp_s * 1e9);
     if (d->tells_age)
         mark.first_ns = mark.ns - (int64_t)(waiting / d->rate_hz * 1e9);
@@ -52,6 +55,7 @@ static struct device device_of(uint64_t seed, double rate_hz, double ppm)
     d.period = (uint32_t)(0.0125 * rate_hz);
     d.tells_age = true;
     d.preempted = 0.02;
+    d.early = 0.001;
     return d;
 }
 
