@@ -103,11 +103,12 @@ static void overruns(double rate_hz, uint32_t n_channels, const char *keys)
     live_open(&l, &settings);
     live_listen(&l, live_now_s() + 2, LIVE_TIME);
     uint32_t expected = l.n_gaps; /* a loaded machine may lose frames by itself: these count as well */
-    for (int i = 0; i < 3; i++) {
+    const int times = test_length() == TEST_LONG ? 20 : 3;
+    for (int i = 0; i < times; i++) {
         pid_t pid = live_capture_pid();
         assert_true(pid > 0);
         kill(pid, SIGSTOP);
-        live_listen(&l, live_now_s() + 0.4 + 0.1 * i, LIVE_TIME);
+        live_listen(&l, live_now_s() + 0.4 + 0.1 * (i % 5), LIVE_TIME);
         kill(pid, SIGCONT);
         live_listen(&l, live_now_s() + 1.2, LIVE_TIME);
         expected++;
@@ -351,6 +352,47 @@ static void test_refused(void **state)
     live_end();
 }
 
+/* Runs the capture program with these words; its exit code, and what it wrote where. */
+static int run_program(const char *words, const char *stream, char *out, size_t size)
+{
+    char command[1024];
+    snprintf(command, sizeof command, "%s/hushwatch-capture %s %s", test_build(), words, stream);
+    FILE *pipe_end = popen(command, "r");
+    assert_non_null(pipe_end);
+    size_t n = fread(out, 1, size - 1, pipe_end);
+    out[n] = '\0';
+    int how = pclose(pipe_end);
+    assert_true(WIFEXITED(how));
+    return WEXITSTATUS(how);
+}
+
+static void test_command_line(void **state)
+{
+    (void)state;
+    const struct {
+        const char *words, *complaint;
+    } wrong[] = {
+        {"", "--list, or --memory"},
+        {"--memory 0 --device feed --rate 5 --channels 2", "--rate 5: allowed are 1000 to 384000"},
+        {"--memory 0 --device feed --rate 48000 --channels 17", "--channels 17: allowed are 1 to 16"},
+        {"--memory 0 --device feed --rate 48000 --channels 2 --latency 0.1", "allowed are 0.2 to 5"},
+        {"--memory 0 --device feed --rate 48000 --channels 2 more", "see --help"},
+        {"--memory 0 --device feed --rate 48000 --channels 2 </dev/null", "no memory that can be shared"},
+        {"--unknown", "unrecognized option"}};
+    char said[4096];
+    live_begin(48000, 2, "");
+    assert_int_equal(run_program("--help", "2>/dev/null", said, sizeof said), 0);
+    assert_non_null(strstr(said, "--list"));
+    assert_int_equal(run_program("--list", "2>/dev/null", said, sizeof said), 0);
+    assert_non_null(strstr(said, "     0         2       48000  feed\n"));
+    for (size_t i = 0; i < sizeof wrong / sizeof wrong[0]; i++) {
+        assert_int_equal(run_program(wrong[i].words, "2>&1", said, sizeof said), 2);
+        if (!strstr(said, wrong[i].complaint))
+            fail_msg("%s: %s", wrong[i].words, said);
+    }
+    live_end();
+}
+
 /* By number, and by a part of the name. */
 static void test_names(void **state)
 {
@@ -429,6 +471,7 @@ int main(int argc, char **argv)
         cmocka_unit_test(test_stopped_capture),
         cmocka_unit_test(test_garbage_ring),
         cmocka_unit_test(test_refused),
+        cmocka_unit_test(test_command_line),
         cmocka_unit_test(test_names),
         cmocka_unit_test(test_ends_with_its_parent),
     };
