@@ -6,7 +6,8 @@
 
 #define ENERGY_PART 0.9
 #define WEAK_DB 10.0
-#define FULL_SCALE (1.0 - 0x1p-15) /* one step of 16 bits below */
+/* One step of 16 bits below, and a little for the rounding of samples to pascals. */
+#define FULL_SCALE (1.0 - 1.01 * 0x1p-15)
 
 /* First crossing of a level by the running sum at or after frame `from`, or the last one before `until`. */
 struct crossings {
