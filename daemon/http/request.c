@@ -111,24 +111,10 @@ static bool is_json(struct MHD_Connection *connection)
            (type[n] == '\0' || type[n] == ';' || type[n] == ' ');
 }
 
-static const struct route *find_route(const char *method, const char *path, bool *out_path_exists)
-{
-    *out_path_exists = false;
-    for (const struct route *route = http_routes; route->path; route++)
-        if (strcmp(route->path, path) == 0) {
-            *out_path_exists = true;
-            if (strcmp(route->method, method) == 0)
-                return route;
-        }
-    return NULL;
-}
-
 /* What is wrong with the request before its body, as a code and a word; 0 when nothing is. */
 static unsigned wrong(const struct http *http, struct MHD_Connection *connection, const char *method,
-                      const char *url, const struct route **out_route, const char **out_why)
+                      const struct route *route, bool exists, const char **out_why)
 {
-    bool exists;
-    *out_route = find_route(method, url, &exists);
     bool post = strcmp(method, "POST") == 0;
     const char *host = header(connection, "Host");
     *out_why = "this server answers only to its own name";
@@ -141,7 +127,7 @@ static unsigned wrong(const struct http *http, struct MHD_Connection *connection
     if (!exists)
         return MHD_HTTP_NOT_FOUND;
     *out_why = "this path does not take this method";
-    if (!*out_route)
+    if (!route)
         return MHD_HTTP_METHOD_NOT_ALLOWED;
     *out_why = "only this server's own pages may write";
     if (post && !same_origin(connection, host))
@@ -166,9 +152,11 @@ static int socket_of(struct MHD_Connection *connection)
 static enum MHD_Result begin(struct http *http, struct MHD_Connection *connection, const char *url,
                              const char *method, void **request_context)
 {
-    const struct route *route;
+    bool exists;
     const char *why;
-    unsigned code = wrong(http, connection, method, url, &route, &why);
+    const struct web_file *file;
+    const struct route *route = http_find_route(method, url, &exists, &file);
+    unsigned code = wrong(http, connection, method, route, exists, &why);
     if (code != 0)
         return http_refuse(connection, code, why, NULL, NULL);
     struct request *request = malloc(sizeof *request);
@@ -177,6 +165,7 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     request->http = http;
     request->connection = connection;
     request->route = route;
+    request->file = file;
     request->too_large = request->submitted = false;
     request->body_length = 0;
     *request_context = request;

@@ -6,6 +6,7 @@
 #include "http/desk.h"
 #include "http/events.h"
 #include "http/server.h"
+#include "http/web.h"
 #include <microhttpd.h>
 #include <pthread.h>
 #include <stdatomic.h>
@@ -31,6 +32,7 @@ struct request {
     struct http *http;
     struct MHD_Connection *connection;
     const struct route *route;
+    const struct web_file *file; /* NULL for an endpoint */
     bool too_large;
     bool submitted; /* the note is with the watch, or was */
     size_t body_length;
@@ -38,14 +40,15 @@ struct request {
     struct desk_item item;
 };
 
-/* One line a route (routes.c). */
 struct route {
     const char *method, *path;
     enum MHD_Result (*answer)(struct request *request);
 };
 
-/* The table, closed by a NULL path. */
-extern const struct route http_routes[];
+/* The route of a path and method, or NULL; whether the path exists at all; the embedded file that it names,
+ * NULL where it is an endpoint. */
+const struct route *http_find_route(const char *method, const char *path, bool *out_exists,
+                                    const struct web_file **out_file);
 
 /* Queues an answer with the headers that every answer has; the body is copied. */
 enum MHD_Result http_answer(struct MHD_Connection *connection, unsigned code, const char *type,

@@ -1,0 +1,17 @@
+/* The endpoints: one line each. A page or another embedded file needs none (see routes.c). */
+#ifndef HTTP_ROUTES_H
+#define HTTP_ROUTES_H
+
+#include "http/request.h"
+
+#define HTTP_ROUTES(ROUTE)                                                                                   \
+    ROUTE("GET", "/api/state", api_state)                                                                    \
+    ROUTE("GET", "/api/permit", api_permit)                                                                  \
+    ROUTE("GET", "/api/events", api_events)                                                                  \
+    ROUTE("GET", "/api/sound", api_sound)                                                                    \
+    ROUTE("POST", "/api/note", api_note)
+
+#define HTTP_DECLARE(method, path, answer) enum MHD_Result answer(struct request *request);
+HTTP_ROUTES(HTTP_DECLARE)
+
+#endif
