@@ -130,6 +130,23 @@ static void test_overruns_exact(void **state)
         overruns(192000, 2, "ppm 40");
 }
 
+/* The hardware itself says that it lost something: little, and flagged. */
+static void test_small_overrun_exact(void **state)
+{
+    (void)state;
+    struct live_listener l;
+    struct stream_settings settings = live_settings(96000, 4);
+    live_begin(96000, 4, "ppm 20 overrun_at 2.5");
+    live_open(&l, &settings);
+    live_listen(&l, 3.5, LIVE_TIME);
+    assert_int_equal(l.wrong + l.n_inside, 0);
+    assert_int_equal(l.n_gaps, 1);
+    assert_true(l.gaps[0].really_lost > 0 && l.gaps[0].really_lost < 9600);
+    check_gap(&l, 0, 0, "overrun by the hardware");
+    live_close(&l);
+    live_end();
+}
+
 /* The reader is away for longer than the ring holds: the ring counts what it could not take. */
 static void test_slow_reader_exact(void **state)
 {
@@ -463,6 +480,7 @@ int main(int argc, char **argv)
         cmocka_unit_test(test_exact_192k),
         cmocka_unit_test(test_exact_384k),
         cmocka_unit_test(test_overruns_exact),
+        cmocka_unit_test(test_small_overrun_exact),
         cmocka_unit_test(test_slow_reader_exact),
         cmocka_unit_test(test_short_stall_exact),
         cmocka_unit_test(test_stall),
