@@ -1,0 +1,337 @@
+/* lib/rule: stretches of time against a plain bitmap, the table of contacts, and the watch at its edges. What
+ * the watch does is told in tests/scenario. */
+#include "support/test.h"
+
+#include "base/random.h"
+#include "base/time.h"
+#include "rule/contact.h"
+#include "rule/spans.h"
+#include "rule/watch.h"
+#include "settings/permit.h"
+#include <math.h>
+
+#define SECOND TIME_NS_PER_S
+
+/* ---- spans: each stretch as bits of 64 steps */
+static uint64_t bits_of(const struct spans *spans)
+{
+    uint64_t bits = 0;
+    for (uint32_t i = 0; i < spans->n; i++) {
+        assert_true(spans->all[i].start_ns < spans->all[i].end_ns);
+        assert_true(i == 0 || spans->all[i - 1].end_ns <= spans->all[i].start_ns);
+        for (int64_t k = spans->all[i].start_ns; k < spans->all[i].end_ns; k++)
+            bits |= UINT64_C(1) << k;
+    }
+    return bits;
+}
+
+static void spans_agree_with_bits(void **state)
+{
+    (void)state;
+    struct random random;
+    random_reset(&random, 5);
+    for (int trial = 0; trial < 5000; trial++) {
+        struct spans a = {0}, b = {0}, out;
+        uint64_t bits_a = 0, bits_b = 0;
+        for (int i = 0; i < 8; i++) {
+            int64_t start = (int64_t)(random_bits(&random) % 60),
+                    end = start + (int64_t)(random_bits(&random) % 5);
+            struct spans *into = i % 2 ? &a : &b;
+            spans_add(into, start, end);
+            for (int64_t k = start; k < end; k++)
+                *(i % 2 ? &bits_a : &bits_b) |= UINT64_C(1) << k;
+        }
+        assert_true(bits_of(&a) == bits_a && bits_of(&b) == bits_b);
+        assert_int_equal(spans_total_ns(&a), __builtin_popcountll(bits_a));
+        spans_common(&a, &b, &out);
+        assert_true(bits_of(&out) == (bits_a & bits_b));
+        spans_without(&a, &b, &out);
+        assert_true(bits_of(&out) == (bits_a & ~bits_b));
+        spans_common(&a, &b, &a); /* in place */
+        assert_true(bits_of(&a) == (bits_a & bits_b));
+    }
+}
+
+static void full_spans_forget_the_oldest(void **state)
+{
+    (void)state;
+    struct spans spans = {0};
+    for (int64_t i = 0; i < SPANS_MAX + 3; i++)
+        spans_add(&spans, 10 * i, 10 * i + 5);
+    assert_int_equal(spans.n, SPANS_MAX);
+    assert_int_equal(spans.all[0].start_ns, 30);
+    assert_int_equal(spans.all[SPANS_MAX - 1].start_ns, 10 * (SPANS_MAX + 2));
+}
+
+/* ---- contacts */
+static void open_contacts_are_never_forgotten(void **state)
+{
+    (void)state;
+    static struct contacts contacts;
+    memset(&contacts, 0, sizeof contacts);
+    for (uint32_t i = 1; i <= WATCH_MAX_CONTACTS; i++)
+        assert_int_equal(contacts_add(&contacts, GROUP_PORPOISE, 0)->number, i);
+    assert_null(contacts_add(&contacts, GROUP_PORPOISE, 0));
+    contacts_find(&contacts, 7)->state = CONTACT_CLEARED;
+    contacts_find(&contacts, 5)->state = CONTACT_CLEARED;
+    contacts_find(&contacts, 5)->holding = true; /* a closed one that still holds something back stays */
+    struct contact *added = contacts_add(&contacts, GROUP_DELPHINID, 3);
+    assert_int_equal(added->number, WATCH_MAX_CONTACTS + 1);
+    assert_null(contacts_find(&contacts, 7));
+    assert_non_null(contacts_find(&contacts, 5));
+    assert_null(contacts_add(&contacts, GROUP_DELPHINID, 4));
+    assert_ptr_equal(contacts_near(&contacts, GROUP_DELPHINID, 103, 100), added);
+    assert_null(contacts_near(&contacts, GROUP_DELPHINID, 104, 100));
+    added->state = CONTACT_DISMISSED;
+    assert_null(contacts_near(&contacts, GROUP_DELPHINID, 4, 100));
+}
+
+/* Log-odds fade as exp(-t / tau): after one tau 1/e is left. */
+static void evidence_fades(void **state)
+{
+    (void)state;
+    struct contact contact = {.evidence = 10, .evidence_ns = 5 * SECOND};
+    assert_near(contact_evidence(&contact, 305 * SECOND, 300), 3.6787944117, 1e-9);
+    assert_near(contact_evidence(&contact, 5 * SECOND, 300), 10, 1e-12);
+}
+
+/* ---- the watch */
+struct kept {
+    unsigned n;
+    struct outcome all[64];
+};
+static struct kept kept;
+static struct permit permit;
+static struct watch *watch;
+static struct watch_view view;
+static uint64_t counter;
+
+static void take(void *context, const struct outcome *outcome)
+{
+    (void)context;
+    if (kept.n < 64)
+        kept.all[kept.n++] = *outcome;
+}
+static const struct outcome_sink sink = {take, NULL};
+
+static struct watch_setup good_setup(void)
+{
+    return (struct watch_setup){.permit = &permit,
+                                .contact_gap_s = 300,
+                                .look_evidence = 4,
+                                .act_evidence = 8,
+                                .evidence_decay_s = 300,
+                                .sighting_log_spread = 0.2,
+                                .silence_s = 60};
+}
+
+static int begin(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    if (permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK)
+        return -1;
+    struct watch_setup setup = good_setup();
+    kept.n = 0;
+    counter = 0;
+    return watch_create(&setup, &watch) == STATUS_OK ? 0 : -1;
+}
+
+static int end(void **state)
+{
+    (void)state;
+    watch_destroy(watch);
+    watch = NULL;
+    return 0;
+}
+
+static void push(struct event event, int64_t known_ns)
+{
+    event.run = event.run ? event.run : 1;
+    event.known_ns = known_ns;
+    event.counter = ++counter;
+    assert_int_equal(watch_push(watch, &event, &sink), STATUS_OK);
+}
+
+static void push_note(int64_t known_ns, enum note_kind kind, const char *const fields[][2])
+{
+    struct event event = {.kind = EVENT_NOTE};
+    note_reset(&event.as.note, kind);
+    for (; (*fields)[0]; fields++)
+        assert_int_equal(note_set(&event.as.note, (*fields)[0], (*fields)[1], NULL), STATUS_OK);
+    push(event, known_ns);
+}
+#define NOTE(at, kind, ...) push_note(at, kind, (const char *const[][2]){__VA_ARGS__, {NULL, NULL}})
+
+static void bad_setups_and_times_are_refused(void **state)
+{
+    (void)state;
+    struct watch *other = watch;
+    struct watch_setup setup = good_setup();
+    setup.contact_gap_s = 0;
+    assert_int_equal(watch_create(&setup, &other), STATUS_BAD_ARGUMENT);
+    setup = good_setup();
+    setup.act_evidence = 3;
+    assert_int_equal(watch_create(&setup, &other), STATUS_BAD_ARGUMENT);
+    setup = good_setup();
+    setup.permit = NULL;
+    assert_int_equal(watch_create(&setup, &other), STATUS_BAD_ARGUMENT);
+    static struct permit bad;
+    bad = permit;
+    bad.n_zones = 0;
+    setup.permit = &bad;
+    assert_int_equal(watch_create(&setup, &other), STATUS_BAD_ARGUMENT);
+    assert_ptr_equal(other, watch);
+    watch_destroy(NULL);
+    assert_int_equal(watch_advance(watch, 10 * SECOND, &sink), STATUS_OK);
+    assert_int_equal(watch_advance(watch, 9 * SECOND, &sink), STATUS_BAD_ARGUMENT);
+    struct event event = {.kind = EVENT_LEVEL, .known_ns = 9 * SECOND};
+    assert_int_equal(watch_push(watch, &event, &sink), STATUS_BAD_ARGUMENT);
+    event = (struct event){.kind = EVENT_CALL, .known_ns = 11 * SECOND, .as.call.group = (enum group)77};
+    assert_int_equal(watch_push(watch, &event, &sink), STATUS_BAD_ARGUMENT);
+    assert_int_equal(kept.n, 0);
+}
+
+static void events_go_out_first_and_completed(void **state)
+{
+    (void)state;
+    NOTE(3 * SECOND, NOTE_REMARK, {"text", "x"}, {"person", "Ann"});
+    assert_int_equal(kept.all[0].kind, OUTCOME_EVENT);
+    assert_int_equal(kept.all[0].as.event.as.note.known_ns, 3 * SECOND);
+    assert_int_equal(kept.all[0].as.event.as.note.occurred_ns, 3 * SECOND);
+    NOTE(4 * SECOND, NOTE_REMARK, {"text", "x"}, {"person", "Ann"}, {"occurred_ns", "1000000000"});
+    assert_int_equal(kept.all[1].as.event.as.note.occurred_ns, SECOND);
+    struct event impulse = {.kind = EVENT_IMPULSE, .stream = 1};
+    impulse.as.impulse.time_ns = 5 * SECOND;
+    push(impulse, 5 * SECOND);
+    assert_int_equal(kept.all[2].as.event.as.impulse.whose, IMPULSE_UNKNOWN);
+    assert_string_equal(kept.all[2].as.event.as.impulse.job, "");
+    NOTE(6 * SECOND, NOTE_JOB, {"job", "A1"}, {"answer", "open"});
+    NOTE(6 * SECOND, NOTE_SOURCE, {"source_state", "soft start"});
+    kept.n = 0;
+    impulse.as.impulse.time_ns = 7 * SECOND;
+    push(impulse, 7 * SECOND);
+    assert_int_equal(kept.all[0].as.event.as.impulse.whose, IMPULSE_OURS);
+    assert_string_equal(kept.all[0].as.event.as.impulse.job, "A1");
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_impulses, 1);
+    assert_true(view.source_heard && view.source_said == PHASE_SOFT_START);
+    assert_string_equal(view.job, "A1");
+}
+
+static void counters_begin_anew_with_each_run(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_SIGN_ON, {"person", "Ann"}, {"watch", "visual"});
+    NOTE(0, NOTE_SIGN_ON, {"person", "Bo"}, {"watch", "acoustic"});
+    NOTE(5 * SECOND, NOTE_SIGHTING, {"person", "Ann"}, {"group", "porpoise"}, {"distance_m", "50"});
+    struct event run = {.kind = EVENT_RUN, .run = 2};
+    run.as.run_mark = (struct run_mark){10 * SECOND, 20 * SECOND};
+    kept.n = 0;
+    push(run, 20 * SECOND);
+    assert_int_equal(kept.all[0].kind, OUTCOME_EVENT); /* the run is the first entry of its run */
+    assert_int_equal(kept.all[0].run, 2);
+    kept.n = 0;
+    assert_int_equal(watch_advance(watch, 200 * SECOND, &sink), STATUS_OK);
+    assert_true(kept.n >= 2);
+    bool seen[5] = {false};
+    for (unsigned i = 0; i < kept.n; i++) {
+        assert_int_equal(kept.all[i].run, 2);
+        assert_true(seen[kept.all[i].kind] || kept.all[i].counter == 1);
+        seen[kept.all[i].kind] = true;
+    }
+    assert_true(seen[OUTCOME_CONTACT] && seen[OUTCOME_PHASE]);
+}
+
+static void each_station_answers_for_itself(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_SIGN_ON, {"person", "Ann"}, {"watch", "visual"});
+    NOTE(0, NOTE_SIGN_ON, {"person", "Bo"}, {"watch", "acoustic"});
+    watch_get_view(watch, &view);
+    char id[FLOW_ID_SIZE];
+    unsigned crew = strcmp(view.advice[0].advice.station, "crew") == 0 ? 0 : 1;
+    strcpy(id, view.advice[crew].id);
+    assert_true(view.advice[crew].in_force && !view.advice[crew].acknowledged);
+    NOTE(SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Cy"}, {"station", "bridge"}, {"advice", id},
+         {"answer", "seen"});
+    NOTE(2 * SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Di"}, {"station", "hammer cab"}, {"advice", id},
+         {"answer", "passed"});
+    NOTE(3 * SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Cy"}, {"station", "bridge"}, {"advice", id},
+         {"answer", "passed"});
+    watch_get_view(watch, &view);
+    const struct watch_advice *advice = &view.advice[crew];
+    assert_true(advice->acknowledged);
+    assert_string_equal(advice->acknowledged_by, "Cy");
+    assert_int_equal(advice->n_acknowledgements, 2);
+    assert_string_equal(advice->acknowledgements[0].station, "bridge");
+    assert_string_equal(advice->acknowledgements[0].answer, "passed");
+    assert_int_equal(advice->acknowledgements[0].known_ns, 3 * SECOND);
+    assert_string_equal(advice->acknowledgements[1].person, "Di");
+}
+
+/* An advice in force is kept while 100 others for the other station come and go. */
+static void advice_in_force_is_never_forgotten(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_SIGN_ON, {"person", "Ann"}, {"watch", "visual"});
+    NOTE(0, NOTE_SIGN_ON, {"person", "Bo"}, {"watch", "acoustic"});
+    for (int i = 0; i < 100; i++) {
+        int64_t at = (i + 1) * SECOND / 10;
+        char number[16];
+        snprintf(number, sizeof number, "%d", i + 1);
+        struct event call = {.kind = EVENT_CALL, .stream = 1};
+        call.as.call.group = GROUP_PORPOISE;
+        call.as.call.start_ns = call.as.call.end_ns = at;
+        call.as.call.evidence = 20;
+        push(call, at);
+        NOTE(at, NOTE_VERDICT, {"person", "Bo"}, {"contact", number}, {"verdict", "dismiss"},
+             {"text", "noise"});
+    }
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_advice, WATCH_MAX_ADVICE);
+    unsigned in_force[2] = {0, 0};
+    for (uint32_t i = 0; i < view.n_advice; i++)
+        if (view.advice[i].in_force) {
+            bool crew = strcmp(view.advice[i].advice.station, "crew") == 0;
+            in_force[crew]++;
+            assert_int_equal(view.advice[i].advice.advice, ADVICE_DO_NOT_START);
+            assert_true(!crew || view.advice[i].since_ns == 0);
+        }
+    assert_int_equal(in_force[0], 1);
+    assert_int_equal(in_force[1], 1);
+    assert_int_equal(view.n_contacts, WATCH_MAX_CONTACTS); /* the newest, dismissed as they are */
+    assert_int_equal(view.contacts[0].contact.contact, 100);
+}
+
+static void no_room_for_another_person_is_said(void **state)
+{
+    (void)state;
+    for (int i = 0; i <= WATCH_MAX_PEOPLE; i++) {
+        char name[16];
+        snprintf(name, sizeof name, "P%d", i);
+        NOTE(0, NOTE_SIGN_ON, {"person", name}, {"watch", "crew"}, {"station", "bridge"});
+    }
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_people, WATCH_MAX_PEOPLE);
+    assert_int_equal(kept.all[kept.n - 1].kind, OUTCOME_FINDING);
+    assert_string_equal(kept.all[kept.n - 1].as.finding.code, "note without effect");
+    assert_int_equal(view.phase, PHASE_OFF);
+}
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test(spans_agree_with_bits),
+        cmocka_unit_test(full_spans_forget_the_oldest),
+        cmocka_unit_test(open_contacts_are_never_forgotten),
+        cmocka_unit_test(evidence_fades),
+        cmocka_unit_test_setup_teardown(bad_setups_and_times_are_refused, begin, end),
+        cmocka_unit_test_setup_teardown(events_go_out_first_and_completed, begin, end),
+        cmocka_unit_test_setup_teardown(counters_begin_anew_with_each_run, begin, end),
+        cmocka_unit_test_setup_teardown(each_station_answers_for_itself, begin, end),
+        cmocka_unit_test_setup_teardown(advice_in_force_is_never_forgotten, begin, end),
+        cmocka_unit_test_setup_teardown(no_room_for_another_person_is_said, begin, end),
+    };
+    return cmocka_run_group_tests_name("watch", tests, NULL, NULL);
+}
