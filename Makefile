@@ -39,7 +39,7 @@ TEST_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/unit/*.c tests/refere
 BENCH_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/bench/*.c))
 FUZZ_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/fuzz/*.c))
 
-.PHONY: all programs install-needs install-test-needs demo check asan tsan soak fuzz bench clean format
+.PHONY: all programs fuzzers tests install-needs install-test-needs demo check asan tsan soak fuzz bench clean format
 all: install-needs
 	@$(MAKE) --no-print-directory -j2 programs
 programs: $(PROGRAMS)
@@ -111,6 +111,18 @@ soak: install-test-needs
 bench: install-test-needs
 	@$(MAKE) --no-print-directory -j2 $(PROGRAMS) $(BENCH_PROGRAMS)
 	@for b in $(BENCH_PROGRAMS); do $$b || exit 1; done
+
+# Each fuzzer runs FUZZ_S seconds; what it finds stays in build/fuzz.
+FUZZ_S ?= 60
+$(BUILD)/tests/fuzz/%: $(BUILD)/tests/fuzz/%.o $(ARCHIVES)
+	$(CC) $(LDFLAGS) -fsanitize=fuzzer -o $@ $^ $(DAEMON_LIBS)
+fuzzers: $(FUZZ_PROGRAMS)
+fuzz: install-test-needs
+	@$(MAKE) --no-print-directory -j2 fuzzers BUILD=build/fuzz CC=clang HARDENING=-fPIE OPTIMIZE=-O1 \
+	  SANITIZE="-fsanitize=address,undefined -fsanitize=fuzzer-no-link -fno-sanitize-recover=all"
+	@for f in $(notdir $(FUZZ_PROGRAMS)); do mkdir -p build/fuzz/corpus/$$f; \
+	  LSAN_OPTIONS=suppressions=tests/support/leaks.supp build/fuzz/tests/fuzz/$$f -max_total_time=$(FUZZ_S) -max_len=4096 -print_final_stats=1 -artifact_prefix=build/fuzz/$$f- \
+	    build/fuzz/corpus/$$f tests/fuzz/seeds/$$f 2>&1 | tail -n 12 || exit 1; done
 
 demo: all
 	@sh tests/support/demo.sh $(BUILD)

@@ -63,6 +63,7 @@ def main():
     environment = dict(os.environ, HUSHWATCH_BUILD=os.path.abspath(options.build), HUSHWATCH_LENGTH=length,
                        HUSHWATCH_SHARED=os.path.abspath("../shared"), CMOCKA_MESSAGE_OUTPUT="TAP",
                        PYTHONDONTWRITEBYTECODE="1", ASAN_OPTIONS="detect_leaks=1:abort_on_error=0",
+                       LSAN_OPTIONS="suppressions=" + os.path.abspath("tests/support/leaks.supp") + ":print_suppressions=0",
                        UBSAN_OPTIONS="print_stacktrace=1", TSAN_OPTIONS="halt_on_error=0:exitcode=66")
     with open("tests/support/may-skip.txt") as allowed_file:
         allowed = [line.split("#")[0].strip() for line in allowed_file]
