@@ -3,7 +3,8 @@
 #include <math.h>
 #include <stddef.h>
 
-#define FLANK 2 /* bins beside a tone's that hold its power (Hann) */
+#define START_SHARE 0.03 /* of a path's mean power: 15 dB */
+#define FLANK 2          /* bins beside a tone's that hold its power (Hann) */
 
 static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
 {
@@ -77,13 +78,18 @@ static double cell_power(const struct tracer *tracer, uint64_t last, uint32_t i)
     return row_of(tracer->history_power, tracer, last - i)[tracer->trail[i]];
 }
 
-/* A loud call is felt in spectra that only touch its beginning: cells far below the next few are dropped. */
+/* A path may come out of noise, and a loud call is felt in spectra that only touch its beginning: cells at
+ * the start that are far below the path's mean, or below the next few, are dropped. */
 static uint32_t trim_start(const struct tracer *tracer, uint64_t last, uint32_t n)
 {
+    double mean = 0;
+    for (uint32_t i = 0; i < n; i++)
+        mean += cell_power(tracer, last, i) / n;
     while (n > 4) {
         double next = fmax(cell_power(tracer, last, n - 2),
                            fmax(cell_power(tracer, last, n - 3), cell_power(tracer, last, n - 4)));
-        if (cell_power(tracer, last, n - 1) >= TAIL_SHARE * next)
+        double power = cell_power(tracer, last, n - 1);
+        if (power >= TAIL_SHARE * next && power >= START_SHARE * mean)
             break;
         n--;
     }

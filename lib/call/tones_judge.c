@@ -16,8 +16,10 @@
 #define MAX_HARMONIC 10
 #define MEMORY_S 12.0       /* how long a given sound still absorbs its pieces */
 #define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
-#define LOOK_AGAIN_S 0.05   /* after a sound was held for an open contour */
-#define NEARLY_BEST 0.5     /* classes with so much of the most points are equals */
+#define FAR_WEAKER 0.01
+#define ECHO_S 0.5
+#define LOOK_AGAIN_S 0.05 /* after a sound was held for an open contour */
+#define NEARLY_BEST 0.5   /* classes with so much of the most points are equals */
 
 static double duration(const struct contour *c)
 {
@@ -63,12 +65,17 @@ static bool is_harmonic(const struct contour *a, const struct contour *b)
     return share_in_ratio(high, low, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= 0.7;
 }
 
-/* Far weaker than the other, above it, and nearly all within its time: an overtone or its distortion, though
- * no multiple can be told (at the tenth harmonic any frequency is near one). */
-static bool is_overtone(const struct contour *weak, const struct contour *strong)
+/* Weaker than the other, above it, and mostly within its time, or far weaker and begun within it: an
+ * overtone, its distortion or its echo, though no multiple can be told (at the tenth harmonic any frequency
+ * is near one). */
+static bool is_overtone(const struct judge *judge, const struct contour *weak, const struct contour *strong)
 {
-    return overlap(weak, strong) >= HARMONIC_OVERLAP * duration(weak) &&
-           weak->mean_square < OVERTONE_WEAKER * strong->mean_square && weak->low_hz > strong->high_hz;
+    if (weak->low_hz <= strong->high_hz || weak->mean_square >= OVERTONE_WEAKER * strong->mean_square)
+        return false;
+    bool within = overlap(weak, strong) >= HARMONIC_OVERLAP * duration(weak);
+    bool begun = weak->start_frame >= strong->start_frame && weak->start_frame < strong->end_frame &&
+                 weak->end_frame < strong->end_frame + ECHO_S * judge->rate_hz;
+    return within || (begun && weak->mean_square < FAR_WEAKER * strong->mean_square);
 }
 
 static uint32_t first_class(const struct judge *judge, uint32_t tracer)
@@ -88,7 +95,7 @@ bool judge_is_same_sound(const struct judge *judge, const struct contour *a, con
         return true;
     if (common >= HARMONIC_OVERLAP * shorter && is_harmonic(a, b))
         return true;
-    if (is_overtone(a, b) || is_overtone(b, a))
+    if (is_overtone(judge, a, b) || is_overtone(judge, b, a))
         return true;
     enum group group_a = judge->classes[first_class(judge, a->tracer)].class->group;
     enum group group_b = judge->classes[first_class(judge, b->tracer)].class->group;
@@ -340,7 +347,7 @@ static enum openness look_at_open(const struct judge *judge, const struct sound 
     for (uint32_t i = 0; i < n_open; i++) {
         bool overtone = true;
         for (uint32_t m = 0; m < sound->n_members; m++)
-            overtone = overtone && is_overtone(&sound->members[m], &open[i]);
+            overtone = overtone && is_overtone(judge, &sound->members[m], &open[i]);
         if (overtone)
             return OVERTONE_OF_OPEN;
         if (open[i].end_frame > sound->end_frame && belongs(judge, sound, &open[i]))
