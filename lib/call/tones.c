@@ -278,6 +278,11 @@ void tones_reset(struct tones *tones, uint64_t next_frame)
     tones->slice_end = (next_frame / tones->n_slice + 1) * tones->n_slice;
 }
 
+static float limit(float pascals)
+{
+    return isfinite(pascals) ? copysignf(MOST_PA, pascals) : 0;
+}
+
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink)
 {
     if (n > 0)
@@ -287,7 +292,7 @@ void tones_push(struct tones *tones, const float *pascals, uint32_t n, const str
         uint32_t take = n < left ? n : (uint32_t)left;
         float *slice = tones->slice + tones->n_held;
         for (uint32_t i = 0; i < take; i++)
-            slice[i] = isfinite(pascals[i]) ? fminf(fmaxf(pascals[i], -MOST_PA), MOST_PA) : 0;
+            slice[i] = fabsf(pascals[i]) <= MOST_PA ? pascals[i] : limit(pascals[i]);
         pascals += take;
         n -= take;
         tones->n_held += take;

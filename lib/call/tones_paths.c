@@ -62,30 +62,41 @@ static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
     const uint32_t at = k + MAX_STEP;
     const int step = (int)tracer->step[k];
     const float power = tracer->power[tracer->first_bin + k];
-    float gain = tracer->gain[k];
-    if (step != STEP_START && gain > FLANK_GAIN &&
-        power < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)])
-        gain = FLANK_GAIN;
-    const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + gain;
-    tracer->now.score[at] = score > 0 ? score : 0;
-    tracer->now.path[at] = NO_PATH;
-    if (score > 0 && step == STEP_START)
+    if (step == STEP_START) {
         begin_cell(tracer, at, power);
-    else if (score > 0)
-        inherit_cell(tracer, at, step, power);
+        return;
+    }
+    if (tracer->gain[k] > FLANK_GAIN &&
+        power < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
+        const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
+        tracer->now.score[at] = score > 0 ? score : 0;
+        if (score <= 0)
+            return;
+    }
+    inherit_cell(tracer, at, step, power);
+    tracer->tail[k] = tracer->now.path[at] == NO_PATH ? 0 : TAIL_SHARE;
 }
 
 static void step_cells(struct tracer *tracer)
 {
     const float ceiling = (float)tracer->setup.ceiling;
+    float *scores = tracer->now.score + MAX_STEP;
     int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
-    for (uint32_t k = 0; k < tracer->n_bins; k += TILE)
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
         find_best(tracer, k);
-    for (uint32_t k = 0; k < tracer->n_bins; k++) {
-        step_cell(tracer, k, ceiling);
-        steps[k] = (int8_t)tracer->step[k];
-        tracer->tail[k] = tracer->now.path[k + MAX_STEP] == NO_PATH ? 0 : TAIL_SHARE;
+        const four best = load(tracer->best + k);
+        const four score = choose(best < all(ceiling), best, all(ceiling)) + load(tracer->gain + k);
+        store(scores + k, larger(score, all(0)));
+        for (uint32_t j = k; j < k + TILE; j++)
+            steps[j] = (int8_t)tracer->step[j];
     }
+    for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
+        scores[k] = 0; /* beyond the band nothing runs */
+    memset(tracer->now.path, 0xff, (tracer->stride + 2 * MAX_STEP) * sizeof *tracer->now.path); /* NO_PATH */
+    memset(tracer->tail, 0, tracer->stride * sizeof *tracer->tail);
+    for (uint32_t k = 0; k < tracer->n_bins; k++)
+        if (scores[k] > 0)
+            step_cell(tracer, k, ceiling);
 }
 
 static void find_tips(struct tracer *tracer)
