@@ -80,7 +80,8 @@ static bool zone_covers(const struct permit_zone *zone, const struct contact *co
 void contact_detect(struct contact *contact, const struct permit *permit, int64_t when_ns)
 {
     enum unknown_policy policy = permit->unknown[contact->group];
-    contact->sure = false;
+    if (!contact->holding)
+        contact->sure = false;
     for (uint32_t i = 0; i < permit->n_zones; i++) {
         if (!zone_covers(&permit->zones[i], contact))
             continue;
@@ -124,7 +125,7 @@ void contact_let_go(struct contact *contact)
 void contact_end_episode(struct contact *contact)
 {
     contact->holding = contact->asked = contact->passed = false;
-    contact->confirmed = contact->seen_now = false;
+    contact->confirmed = contact->seen_now = contact->sure = false;
     contact->countdown_ends_ns = -1;
     contact->order = ACTION_LOG;
 }
@@ -268,6 +269,8 @@ void contact_describe(const struct contact *contact, const struct permit *permit
     else if (contact_is_question(contact, permit, now_ns))
         snprintf(inside, sizeof inside, ": the observer is asked whether it is inside the zone '%s'",
                  zone->name);
+    else if (whereabouts_p_inside(&contact->where, zone->radius_m) < permit->p_inside_prepare)
+        snprintf(inside, sizeof inside, ": was inside the zone '%s', which is not clear yet", zone->name);
     else if (!contact->sure && contact->where.known && !contact->confirmed)
         snprintf(inside, sizeof inside, ": may be inside the zone '%s'", zone->name);
     else

@@ -33,7 +33,7 @@ struct contact {
      * policy counts an unknown distance as inside. */
     int64_t stated_ns[PERMIT_MAX_ZONES], assumed_ns[PERMIT_MAX_ZONES];
     int64_t stated_before_ns[PERMIT_MAX_ZONES]; /* the one before, should the newest be corrected */
-    bool sure; /* the last detection was inside by distance (P at least p_inside_act) or by policy */
+    bool sure; /* one of this episode's was inside by distance (P at least p_inside_act) or by policy */
 
     /* One episode lasts from when it first holds something back until it no longer does. */
     bool holding;
@@ -41,7 +41,7 @@ struct contact {
     int64_t countdown_ends_ns; /* of the observer; meaningful while asked and not passed */
     bool passed;               /* it has gone to the crew */
     bool confirmed;            /* by a verdict, in this episode */
-    bool seen_now;             /* sighted in this episode */
+    bool seen_now;             /* sighted in this episode by an observer on watch */
     int64_t word_ns;           /* when a person last sighted or confirmed it; -1 */
     enum permit_action order;  /* the strongest that went to the crew while the source sounded: it stays */
 

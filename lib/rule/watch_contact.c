@@ -155,8 +155,11 @@ void contact_take_sighting(struct watch *watch, const struct note *note)
     if (!contact)
         contact = find_or_add(watch, note->group, watch->now_ns, &is_new);
     contact->state = CONTACT_OPEN;
-    contact->seen = contact->seen_now = true;
-    contact->word_ns = watch->now_ns;
+    contact->seen = true;
+    if (effort_on_watch(watch, note->person)) { /* another's word waits for the observer's */
+        contact->seen_now = true;
+        contact->word_ns = watch->now_ns;
+    }
     contact->calf = contact->calf || note->calf;
     contact->grade = GRADE_ACT; /* a person saw it */
     contact->last_ns = watch->now_ns;
@@ -210,6 +213,21 @@ static void dismiss(struct watch *watch, struct contact *contact, const struct n
     }
 }
 
+static void confirm(struct watch *watch, struct contact *contact, const struct note *note)
+{
+    if (!effort_on_watch(watch, note->person)) {
+        note_without_effect(watch, "%.60s is not on watch: contact %u is not confirmed", note->person,
+                            contact->number);
+        return;
+    }
+    contact->grade = GRADE_ACT;
+    contact->confirmed = true;
+    contact->word_ns = watch->now_ns;
+    if (contact->state == CONTACT_DISMISSED)
+        contact->state = CONTACT_OPEN;
+    watch_say_contact(watch, contact);
+}
+
 void contact_take_verdict(struct watch *watch, const struct note *note)
 {
     struct contact *contact = contacts_find(&watch->contacts, note->contact);
@@ -219,14 +237,9 @@ void contact_take_verdict(struct watch *watch, const struct note *note)
         return;
     }
     contact_add_cause(contact, watch->recent.causes[0]);
-    if (strcmp(note->verdict, "confirm") == 0) {
-        contact->grade = GRADE_ACT;
-        contact->confirmed = true;
-        contact->word_ns = watch->now_ns;
-        if (contact->state == CONTACT_DISMISSED)
-            contact->state = CONTACT_OPEN;
-        watch_say_contact(watch, contact);
-    } else if (strcmp(note->verdict, "dismiss") == 0)
+    if (strcmp(note->verdict, "confirm") == 0)
+        confirm(watch, contact, note);
+    else if (strcmp(note->verdict, "dismiss") == 0)
         dismiss(watch, contact, note);
     else
         leave(watch, contact, note);

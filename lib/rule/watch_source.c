@@ -83,13 +83,16 @@ static void find_contradiction(struct watch *watch, bool of_job)
         return;
     source->contradicted = true;
     const char *said = source->said == PHASE_OFF ? "off" : "stopped";
+    char what[64];
+    snprintf(what, sizeof what,
+             source->said_ns < 0 ? "nobody has said that the source sounds" : "the source is said to be %s",
+             said);
     char code[NOTE_NAME_SIZE];
     struct why why;
     why_reset(&why, watch->permit->soft_start_clause,
-              of_job ? "impulses are heard and job %.31s is open, but the source is said to be %s"
-                     : "impulses are heard%.0s and no job is open: they may be another project's; the source "
-                       "is said to be %s",
-              source->job, said);
+              of_job ? "impulses are heard and job %.31s is open, but %s"
+                     : "impulses are heard%.0s and no job is open: they may be another project's; %s",
+              source->job, what);
     why_add_cause(&why, source->impulse_id);
     why_add_cause(&why, source->said_id);
     snprintf(code, sizeof code, "source heard while %s", said);

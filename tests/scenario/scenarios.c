@@ -6,6 +6,7 @@
 #include "support/scenario.h"
 #include <dirent.h>
 #include <stdlib.h>
+#include <unistd.h>
 
 #define FOLDER "tests/scenario"
 #define MAX_SCENARIOS 400
@@ -48,6 +49,53 @@ static void play(void **state)
     }
 }
 
+/* The player must be able to fail: each of these spoils a good scenario in one place. */
+static void the_player_is_strict(void **state)
+{
+    (void)state;
+    static const char head[] =
+        "0:00:00 Ann signs on as visual observer\n0:00:00 Bo signs on as acoustic observer\n";
+    static const char phase[] = "0:00:00 => phase pre-watch because \"is kept\" causes note\n";
+    static const char advice[] = "0:00:00 => all are told: do not start until 0:01:00\n";
+    static const struct {
+        const char *pieces[4];
+        const char *wanted; /* part of the problem; NULL where it is good */
+    } cases[] = {
+        {{head, phase, advice, "0:00:50 end\n"}, NULL},
+        {{head, phase, advice, ""}, "has no end"},
+        {{head, phase, advice, "0:01:00 end\n"}, "nobody expects"},
+        {{head, phase, "", "0:00:50 end\n"}, "nobody expects"},
+        {{head, advice, "", "0:00:50 end\n"}, "but it is"},
+        {{head, phase, "0:00:00 => observer is told: do not start\n", "0:00:50 end\n"}, "nobody expects"},
+        {{head, phase, advice, "0:00:50 => phase ready\n0:00:50 end\n"}, "nothing comes"},
+        {{head, phase, "0:00:01 => all are told: do not start\n", "0:00:50 end\n"}, "but it is"},
+        {{head, phase, "0:00:00 => all are told: do not start until 0:01:01\n", ""}, "another"},
+        {{head, phase, "0:00:00 => all are told: do not start, not yet confirmed\n", ""}, "but it is"},
+        {{head, "0:00:00 => phase pre-watch because \"is lost\"\n", "", ""}, "the reason is"},
+        {{head, "0:00:00 => phase pre-watch clause \"9\"\n", "", ""}, "the clause is"},
+        {{head, "0:00:00 => phase pre-watch causes call\n", "", ""}, "no cause is a call"},
+        {{"0:00:00 Ann dances\n", "", "", ""}, "cannot read the event"},
+        {{"0:00:09 job A opens\n", "0:00:08 job A closes\n", "", ""}, "earlier"},
+        {{head, phase, advice, "0:00:30 check timer pre-watch stands at 0:00:29\n"}, "stands at 0:00:30"},
+        {{head, phase, advice, "0:00:30 check release possible\n"}, "the other way"},
+    };
+    for (size_t i = 0; i < sizeof cases / sizeof cases[0]; i++) {
+        char path[] = "/tmp/hushwatch-scenario-XXXXXX", problem[2048] = "";
+        int fd = mkstemp(path);
+        assert_true(fd >= 0);
+        FILE *file = fdopen(fd, "w");
+        for (int k = 0; k < 4; k++)
+            fputs(cases[i].pieces[k], file);
+        fclose(file);
+        unsigned outcomes = 0;
+        bool good =
+            scenario_play(path, permit_of("demonstration"), false, &outcomes, problem, sizeof problem);
+        unlink(path);
+        if (good != !cases[i].wanted || (cases[i].wanted && !strstr(problem, cases[i].wanted)))
+            fail_msg("case %zu says \"%s\"", i, problem);
+    }
+}
+
 static void add(const char *name, bool transcript)
 {
     struct scenario *scenario = &scenarios[n_scenarios++];
@@ -67,7 +115,7 @@ static int by_path(const void *a, const void *b)
 
 int main(void)
 {
-    static struct CMUnitTest tests[MAX_SCENARIOS];
+    static struct CMUnitTest tests[MAX_SCENARIOS + 1];
     const char *only = getenv("HUSHWATCH_SCENARIO");
     DIR *folder = opendir(FOLDER);
     struct dirent *file;
@@ -81,12 +129,13 @@ int main(void)
     qsort(scenarios, n_scenarios, sizeof scenarios[0], by_path);
     for (unsigned i = 0; i < n_scenarios; i++)
         tests[i] = (struct CMUnitTest){scenarios[i].title, play, NULL, NULL, &scenarios[i]};
+    tests[n_scenarios] = (struct CMUnitTest)cmocka_unit_test(the_player_is_strict);
     if (n_scenarios == 0) {
         printf("not ok 1 - no scenario found in " FOLDER "\n");
         return 1;
     }
     clock_t start = clock();
-    int failed = _cmocka_run_group_tests("scenarios", tests, n_scenarios, NULL, NULL);
+    int failed = _cmocka_run_group_tests("scenarios", tests, n_scenarios + 1, NULL, NULL);
     printf("# figure %u scenarios, %u outcomes, %.2f s\n", n_scenarios, n_outcomes,
            (double)(clock() - start) / CLOCKS_PER_SEC);
     return failed;
