@@ -7,6 +7,7 @@
 
 #define MACHINE_PULSES 10 /* pulses that a rhythm without jitter needs to be called a machine's */
 #define END_INTERVALS 3.3 /* a train ends after so many intervals without a pulse */
+#define FADING 0.9        /* of a count, with each pulse of a train */
 #define MOST_EVIDENCE 8.0 /* so much ill-fitting is forgiven a train that has long fitted well, nats */
 #define PIECE_S 10.0
 #define PIECE_PULSES 200
@@ -179,13 +180,26 @@ static void claim(struct trains *trains, const struct open_train *open)
         trains_node(trains, number)->owner = open->number;
 }
 
+/* Stray pulses a second that came between the last pulses of a train, at the level of the newest or above. */
+static double fading_strays(struct trains *trains, struct open_train *open)
+{
+    const struct node *node = trains_node(trains, trains->n_pulses - 1);
+    if (!trains_remember(trains, open->last))
+        return 1;
+    open->strays *= FADING;
+    open->strays_s = open->strays_s * FADING + node->time_s - trains_node(trains, open->last)->time_s;
+    for (uint64_t k = open->last + 1; k + 1 < trains->n_pulses; k++)
+        open->strays += trains_node(trains, k)->level_db > node->level_db - LEVEL_STEP_DB;
+    return open->strays / fmax(open->strays_s, 1e-3) + trains_noise_rate(trains, node->snr) + RATE_FLOOR;
+}
+
 /* Makes the newest pulse, with that link, the end of a train. */
 static void lengthen(struct trains *trains, struct open_train *open, uint32_t link,
                      const struct train_sink *sink, uint64_t *rejections)
 {
     uint64_t number = trains->n_pulses - 1;
     const struct node *node = trains_node(trains, number);
-    double gain = node->links[link].gain - log(trains_running_strays(trains, node, &node->links[link]));
+    double gain = node->links[link].gain - log(fading_strays(trains, open));
     open->evidence = fmin(MOST_EVIDENCE, open->evidence + gain);
     if (open->evidence < 0) {
         end_train(trains, open, sink, rejections);

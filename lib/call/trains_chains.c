@@ -66,6 +66,8 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     if (interval <= shape->max_interval_s && from->owner == 0) {
         double score = -ln_interval - trains->ln_range - level_cost;
         best = (struct link){.previous = number,
+                             .first = number,
+                             .first_time_s = from->time_s,
                              .n = 2,
                              .steps = 1,
                              .ln_interval = ln_interval,
@@ -91,6 +93,8 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
             continue;
         best = (struct link){.previous = number,
                              .previous_link = i,
+                             .first = link->first,
+                             .first_time_s = link->first_time_s,
                              .train = link->train,
                              .n = link->n + 1,
                              .steps = m,

@@ -28,6 +28,8 @@ enum { NARROW, WIDE };
 struct link {
     uint64_t previous; /* number of the pulse before */
     uint32_t previous_link;
+    uint64_t first; /* pulse of the chain */
+    double first_time_s;
     uint32_t train;     /* 0: none yet */
     uint32_t n;         /* pulses */
     uint32_t steps;     /* intervals in the last pair */
@@ -52,7 +54,8 @@ struct open_train {
     uint32_t last_link;
     uint64_t given; /* last pulse that was given */
     double given_time_s;
-    double evidence; /* running, of its last steps: below 0 the rhythm is lost (Page 1954) */
+    double strays, strays_s; /* that came between its last pulses, and in what time; fading */
+    double evidence;         /* running, of its last steps: below 0 the rhythm is lost (Page 1954) */
     bool machine;
 };
 
@@ -71,7 +74,7 @@ struct trains {
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
-    double sorted[RING];
+    double competing[RING], sorted[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
 };
 
@@ -101,12 +104,10 @@ double trains_walked_jitter(const struct trains *trains, uint32_t n);
 /* The step of level from which pulses compete with a pulse: one below its own. */
 int trains_level_index(const struct node *node);
 
-/* Stray pulses a second that compete with a pulse of a train: all that came lately at its level, less the
- * train's own. trains_chance.c */
-double trains_running_strays(const struct trains *trains, const struct node *node, const struct link *link);
-/* Spares most chains the walk: false when a rate of stray pulses that is surely too low would not do. */
+/* trains_chance.c: spares most chains the walk: false when a rate of stray pulses that is surely too low
+ * would not do. */
 bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link);
-/* Whether the chain in members[0..n) is more than chance. Uses sorted[]. */
+/* Whether the chain in members[0..n) is more than chance. Uses competing[]. */
 bool trains_are_certain(struct trains *trains, uint32_t n);
 int trains_compare_doubles(const void *a, const void *b);
 
