@@ -229,3 +229,20 @@ pid_t live_capture_pid(void)
     closedir(processes);
     return found;
 }
+
+void live_wait_s(double seconds)
+{
+    struct timespec t = {(time_t)seconds, (long)((seconds - floor(seconds)) * 1e9)};
+    nanosleep(&t, NULL);
+}
+
+void live_check_gap(const struct live_listener *l, uint32_t i, double tolerance_frames, const char *what)
+{
+    assert_true(l->n_gaps > i);
+    double error = (double)l->gaps[i].declared - (double)l->gaps[i].really_lost;
+    printf("# figure %s: %llu frames lost, declared %+.0f\n", what,
+           (unsigned long long)l->gaps[i].really_lost, error);
+    if (fabs(error) > tolerance_frames)
+        fail_msg("%s: declared %llu, lost %llu", what, (unsigned long long)l->gaps[i].declared,
+                 (unsigned long long)l->gaps[i].really_lost);
+}

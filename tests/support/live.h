@@ -48,6 +48,10 @@ void live_open(struct live_listener *listener, const struct stream_settings *set
  * silence. */
 enum live_until { LIVE_TIME, LIVE_UNTIL_SILENT, LIVE_UNTIL_SOUND };
 void live_listen(struct live_listener *listener, double until_s, enum live_until until);
+/* The i-th gap against the truth: fails when what was declared is off by more than the tolerance. */
+void live_check_gap(const struct live_listener *listener, uint32_t i, double tolerance_frames,
+                    const char *what);
+void live_wait_s(double seconds);
 /* Seconds that closing took. */
 double live_close(struct live_listener *listener);
 
