@@ -125,7 +125,7 @@ void contact_let_go(struct contact *contact)
 void contact_end_episode(struct contact *contact)
 {
     contact->holding = contact->asked = contact->passed = false;
-    contact->confirmed = contact->seen_now = contact->sure = false;
+    contact->confirmed = contact->vouched = contact->sure = false;
     contact->countdown_ends_ns = -1;
     contact->order = ACTION_LOG;
 }

@@ -41,8 +41,8 @@ struct contact {
     int64_t countdown_ends_ns; /* of the observer; meaningful while asked and not passed */
     bool passed;               /* it has gone to the crew */
     bool confirmed;            /* by a verdict, in this episode */
-    bool seen_now;             /* sighted in this episode by an observer on watch */
-    int64_t word_ns;           /* when a person last sighted or confirmed it; -1 */
+    bool vouched;              /* in this episode an observer on watch sighted it or said where it is */
+    int64_t word_ns;           /* when an observer on watch last vouched for it or confirmed it; -1 */
     enum permit_action order;  /* the strongest that went to the crew while the source sounded: it stays */
 
     char id[FLOW_ID_SIZE]; /* of its newest entry */

@@ -49,7 +49,7 @@ static void ground_contact(const struct watch *watch, struct wanted *wanted, con
     const struct permit_zone *zone = contact_zone(contact, watch->permit, watch->now_ns);
     wanted->key.ground = GROUND_CONTACT;
     wanted->key.contact = contact->number;
-    wanted->key.confirmed = contact->confirmed || (contact->seen_now && contact->sure);
+    wanted->key.confirmed = contact->confirmed || (contact->vouched && contact->sure);
     contact_describe(contact, watch->permit, watch->now_ns, text);
     bool or_hold = wanted->key.word == ADVICE_HOLD_POWER && watch->permit->stop_if_possible_else_hold;
     why_reset(&wanted->why, zone ? zone->clause : "", "%s%s",

@@ -146,6 +146,15 @@ static void leave(struct watch *watch, struct contact *contact, const struct not
     let_go(watch, contact, text);
 }
 
+/* An observer on watch speaks for the contact; another's word waits for the observer's. */
+static void vouch(const struct watch *watch, struct contact *contact, const struct note *note)
+{
+    if (!effort_on_watch(watch, note->person))
+        return;
+    contact->vouched = true;
+    contact->word_ns = watch->now_ns;
+}
+
 void contact_take_sighting(struct watch *watch, const struct note *note)
 {
     bool is_new = false;
@@ -156,10 +165,7 @@ void contact_take_sighting(struct watch *watch, const struct note *note)
         contact = find_or_add(watch, note->group, watch->now_ns, &is_new);
     contact->state = CONTACT_OPEN;
     contact->seen = true;
-    if (effort_on_watch(watch, note->person)) { /* another's word waits for the observer's */
-        contact->seen_now = true;
-        contact->word_ns = watch->now_ns;
-    }
+    vouch(watch, contact, note);
     contact->calf = contact->calf || note->calf;
     contact->grade = GRADE_ACT; /* a person saw it */
     contact->last_ns = watch->now_ns;
@@ -188,7 +194,10 @@ void contact_take_distance(struct watch *watch, const struct note *note)
     }
     contact_add_cause(contact, watch->recent.causes[0]);
     if (!isnan(note->distance_m)) {
+        vouch(watch, contact, note);
         place(watch, contact, note, contact->last_ns);
+        if (contact_clears_at_ns(contact, watch->permit, watch->now_ns) >= 0)
+            contact->state = CONTACT_OPEN;
         watch_say_contact(watch, contact);
     }
     if (note->leaving)
@@ -257,7 +266,7 @@ static void expire_one(struct watch *watch, struct contact *contact)
         let_go(watch, contact, text);
     } else if (holds && !contact->holding) {
         contact->holding = true; /* what people said of an earlier episode does not speak for this one */
-        contact->seen_now = contact->seen_now && contact->word_ns == watch->now_ns;
+        contact->vouched = contact->vouched && contact->word_ns == watch->now_ns;
         contact->confirmed = contact->confirmed && contact->word_ns == watch->now_ns;
     } else if (holds)
         return;
@@ -270,7 +279,7 @@ static void expire_one(struct watch *watch, struct contact *contact)
 void contact_expire(struct watch *watch)
 {
     for (uint32_t i = 0; i < watch->contacts.n; i++)
-        if (watch->contacts.all[i].state != CONTACT_DISMISSED)
+        if (watch->contacts.all[i].state == CONTACT_OPEN)
             expire_one(watch, &watch->contacts.all[i]);
 }
 
@@ -298,7 +307,7 @@ void contact_present(struct watch *watch)
             contact->asked = true;
             contact->countdown_ends_ns = watch->now_ns + time_from_s(watch->permit->confirm_countdown_s);
         }
-        if (contact->confirmed || (contact->seen_now && contact->sure) ||
+        if (contact->confirmed || (contact->vouched && contact->sure) ||
             watch->now_ns >= contact->countdown_ends_ns)
             contact->passed = true;
         if (contact->passed && source_sounds(watch->phase) && wanted > contact->order)

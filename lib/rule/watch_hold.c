@@ -13,12 +13,12 @@ int64_t contact_due_ns(const struct watch *watch)
     int64_t due = INT64_MAX, gap_ns = time_from_s(watch->setup.contact_gap_s);
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[i];
-        if (contact->state == CONTACT_DISMISSED)
+        if (contact->state != CONTACT_OPEN)
             continue;
         if (contact->holding)
             for (uint32_t zone = 0; zone < watch->permit->n_zones; zone++)
                 earlier(&due, watch->now_ns, contact_zone_clear_ns(contact, watch->permit, zone));
-        else if (contact->state == CONTACT_OPEN)
+        else
             earlier(&due, watch->now_ns, contact->last_ns + gap_ns);
         if (contact->asked && !contact->passed)
             earlier(&due, watch->now_ns, contact->countdown_ends_ns);
