@@ -101,7 +101,7 @@ static struct heard play(const float *frames, uint64_t n, uint32_t channels, boo
     assert_int_equal(blocks_create(1, channels, RATE, &blocks), STATUS_OK);
     const struct block_sink sink = {take_block, &playing};
     for (uint64_t at = 0; at < n;) {
-        uint64_t piece = 1 + random_bits(&random) % 6000, stop = at < lost_at ? lost_at : n;
+        uint64_t piece = 1 + random_bits(&random) % 6000, stop = at < lost_at && lost_at < n ? lost_at : n;
         piece = piece < stop - at ? piece : stop - at;
         blocks_push(blocks, at == lost_at ? lost : 0, frames + at * channels, (uint32_t)piece, &sink);
         at += piece;
