@@ -16,7 +16,7 @@
 #define PASS_BAND 0.4 /* of a decimated rate (dsp/decimate.h) */
 /* How much more cautious the bound of tones_trace.h is than the rate in Gaussian noise, as an exponent:
  * measured over hours of noise at several rates (tests/scenario/tones_noise.c checks what comes of it). */
-#define BOUND_CAUTION 7.0
+#define BOUND_CAUTION 7.5
 #define MIN_FALSE_PER_HOUR 1e-3
 
 /* The sound at a rate of its own; each but the first is decimated from the one before. */

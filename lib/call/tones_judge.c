@@ -65,15 +65,16 @@ static bool is_harmonic(const struct contour *a, const struct contour *b)
     return share_in_ratio(high, low, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= 0.7;
 }
 
-/* Weaker than the other, above it, and mostly within its time, or far weaker and begun within it: an
- * overtone, its distortion or its echo, though no multiple can be told (at the tenth harmonic any frequency
- * is near one). */
+/* Weaker than the other, above it, and mostly within its time, or far weaker and begun within it or just
+ * after: an overtone, its distortion or its echo, though no multiple can be told (at the tenth harmonic any
+ * frequency is near one). */
 static bool is_overtone(const struct judge *judge, const struct contour *weak, const struct contour *strong)
 {
     if (weak->low_hz <= strong->high_hz || weak->mean_square >= OVERTONE_WEAKER * strong->mean_square)
         return false;
     bool within = overlap(weak, strong) >= HARMONIC_OVERLAP * duration(weak);
-    bool begun = weak->start_frame >= strong->start_frame && weak->start_frame < strong->end_frame &&
+    bool begun = weak->start_frame >= strong->start_frame &&
+                 weak->start_frame < strong->end_frame + ECHO_S / 2 * judge->rate_hz &&
                  weak->end_frame < strong->end_frame + ECHO_S * judge->rate_hz;
     return within || (begun && weak->mean_square < FAR_WEAKER * strong->mean_square);
 }
@@ -89,13 +90,13 @@ static uint32_t first_class(const struct judge *judge, uint32_t tracer)
 bool judge_is_same_sound(const struct judge *judge, const struct contour *a, const struct contour *b)
 {
     double common = overlap(a, b), shorter = fmin(duration(a), duration(b));
+    if (is_overtone(judge, a, b) || is_overtone(judge, b, a))
+        return true;
     if (common <= 0)
         return false;
     if (common >= 0.3 * shorter && share_in_ratio(a, b, 1, 0, 2.5 * fmax(a->bin_hz, b->bin_hz)) >= 0.7)
         return true;
     if (common >= HARMONIC_OVERLAP * shorter && is_harmonic(a, b))
-        return true;
-    if (is_overtone(judge, a, b) || is_overtone(judge, b, a))
         return true;
     enum group group_a = judge->classes[first_class(judge, a->tracer)].class->group;
     enum group group_b = judge->classes[first_class(judge, b->tracer)].class->group;

@@ -4,7 +4,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define DESIGN_SNR 2.5F /* of a cell, for which the likelihood ratio is made: near the weakest of use */
+#define DESIGN_SNR 4.0F /* of a cell, for which the likelihood ratio is made: near the weakest of use */
 #define MAX_GAIN 5.0F   /* of one cell: a single loud frame says little about a tone */
 #define NEAR 3          /* bins over which a tone leaks (Hann) ... */
 #define LEAK_SHARE 0.1F /* ... with at most this share of its power outside the two bins beside it */
