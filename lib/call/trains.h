@@ -5,7 +5,7 @@
  * pulses. A chain's score is its likelihood ratio against pulses that come at random (Poisson) at the rate
  * seen around it: each further pulse at interval I after one of interval J: d = ln(I / (m J)), m - 1 pulses
  * missed, density p_d (1 - p_d)^(m - 1) N(d; s) / I against the rate; a level that differs by A dB costs
- * A^2 / (2 * 4^2). The whole chain is scored with s = max_jitter / 4 and with max_jitter at even odds, and
+ * A^2 / (2 * 6^2). The whole chain is scored with s = max_jitter / 4 and with max_jitter at even odds, and
  * the better one counts. Under randomness the expected ratio of each step is at most 1, so the expected
  * number of chains an hour that ever reach a ratio R is at most 3600 rate / R (Ville's inequality for
  * likelihood ratios, here over the branches). A train is given when R > 3600 rate / false_per_hour: the

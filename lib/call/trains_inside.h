@@ -12,8 +12,8 @@
 #define MAX_STEP 3 /* intervals between neighbours of a chain: two missed pulses */
 #define GATE_DEVIATIONS 2.5
 #define DETECTED 0.8         /* chance that a pulse of a train is found at all */
-#define LEVEL_DEVIATION_DB 4 /* between neighbours; a beam that sweeps past changes it slowly */
-#define LEVEL_GATE_DB 12     /* no neighbours beyond */
+#define LEVEL_DEVIATION_DB 6 /* between neighbours: a beam that sweeps past changes it by up to 8 dB */
+#define LEVEL_GATE_DB 15     /* no neighbours beyond */
 #define JUDGED_PULSES 64     /* the last ones of a chain decide whether it is a train */
 #define LEVELS 24            /* steps of 3 dB in which pulses are counted */
 #define LEVEL_STEP_DB 3
