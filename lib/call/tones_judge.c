@@ -259,9 +259,7 @@ static struct sound *find_sound(struct judge *judge, const struct contour *c, en
 
 void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const struct contour *contour)
 {
-    struct contour c = {0};
-    if (contour)
-        c = *contour;
+    struct contour c = contour ? *contour : (struct contour){0};
     c.tracer = tracer;
     enum rejection all = reject_contour(judge, end, &c), each[CATALOGUE_MAX_CLASSES];
     bool fits = false;
