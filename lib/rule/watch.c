@@ -27,7 +27,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
     watch->source.said = PHASE_OFF;
-    watch->source.said_ns = watch->source.impulse_ns = -1;
+    watch->source.said_ns = watch->source.impulse_ns = watch->source.blow_ns = -1;
     watch->source.soft_start_ns = watch->source.quiet_ns = -1;
     *out = watch;
     return STATUS_OK;

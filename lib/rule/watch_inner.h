@@ -50,6 +50,7 @@ struct source {
     char said_id[FLOW_ID_SIZE];
     bool heard;         /* impulses are being heard */
     int64_t impulse_ns; /* the last one */
+    int64_t blow_ns;    /* the last that was counted: one blow is heard on several channels */
     char impulse_id[FLOW_ID_SIZE];
     uint32_t n_unsaid;               /* impulses since the last silence that nobody has spoken for */
     bool heard_in_phase;             /* since the source began to sound */

@@ -3,10 +3,13 @@
 #include "rule/watch_inner.h"
 #include <math.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 /* The last blows before somebody enters 'stopped' contradict nobody. */
 #define GRACE_NS (5 * TIME_NS_PER_S)
+/* Impulses closer than this are one blow on several channels: no hammer or array strikes faster. */
+#define SAME_BLOW_NS (TIME_NS_PER_S / 5)
 
 bool source_sounds(enum phase phase)
 {
@@ -126,8 +129,11 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     if (impulse->time_ns > source->impulse_ns)
         source->impulse_ns = impulse->time_ns < watch->now_ns ? impulse->time_ns : watch->now_ns;
     flow_id(event->run, event->stream, "impulse", event->counter, source->impulse_id);
-    source->n_impulses += impulse->whose == IMPULSE_OURS;
-    source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + 1;
+    bool same = source->blow_ns >= 0 && llabs(impulse->time_ns - source->blow_ns) < SAME_BLOW_NS;
+    if (!same)
+        source->blow_ns = impulse->time_ns;
+    source->n_impulses += impulse->whose == IMPULSE_OURS && !same;
+    source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + !same;
     /* One bang is no source, but for a charge. */
     uint32_t enough = watch->permit->activity == ACTIVITY_EXPLOSIVES ? 1 : 2;
     if (source->n_unsaid >= enough) {

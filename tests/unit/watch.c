@@ -211,12 +211,36 @@ static void events_go_out_first_and_completed(void **state)
     kept.n = 0;
     impulse.as.impulse.time_ns = 7 * SECOND;
     push(impulse, 7 * SECOND);
+    impulse.as.impulse.channel = 2; /* the same blow on another channel */
+    impulse.as.impulse.time_ns += SECOND / 100;
+    push(impulse, 7 * SECOND + SECOND / 100);
     assert_int_equal(kept.all[0].as.event.as.impulse.whose, IMPULSE_OURS);
     assert_string_equal(kept.all[0].as.event.as.impulse.job, "A1");
     watch_get_view(watch, &view);
     assert_int_equal(view.n_impulses, 1);
     assert_true(view.source_heard && view.source_said == PHASE_SOFT_START);
     assert_string_equal(view.job, "A1");
+}
+
+/* One bang, heard on two channels, is no source; a second one is. */
+static void one_bang_is_no_source(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_JOB, {"job", "A1"}, {"answer", "open"});
+    struct event impulse = {.kind = EVENT_IMPULSE, .stream = 1};
+    for (int i = 0; i < 2; i++) {
+        impulse.as.impulse.channel = (uint32_t)(i + 1);
+        impulse.as.impulse.time_ns = 10 * SECOND + i;
+        push(impulse, 11 * SECOND);
+    }
+    watch_get_view(watch, &view);
+    assert_int_equal(view.phase, PHASE_OFF);
+    impulse.as.impulse.time_ns = 12 * SECOND;
+    push(impulse, 12 * SECOND);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.phase, PHASE_SOFT_START);
+    assert_int_equal(kept.all[kept.n - 1].kind, OUTCOME_ADVICE);
+    assert_int_equal(kept.all[kept.n - 1].as.advice.advice, ADVICE_STOP);
 }
 
 static void counters_begin_anew_with_each_run(void **state)
@@ -328,6 +352,7 @@ int main(void)
         cmocka_unit_test(evidence_fades),
         cmocka_unit_test_setup_teardown(bad_setups_and_times_are_refused, begin, end),
         cmocka_unit_test_setup_teardown(events_go_out_first_and_completed, begin, end),
+        cmocka_unit_test_setup_teardown(one_bang_is_no_source, begin, end),
         cmocka_unit_test_setup_teardown(counters_begin_anew_with_each_run, begin, end),
         cmocka_unit_test_setup_teardown(each_station_answers_for_itself, begin, end),
         cmocka_unit_test_setup_teardown(advice_in_force_is_never_forgotten, begin, end),
