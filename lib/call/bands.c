@@ -10,6 +10,10 @@
 #define WINDOW_POINTS 96
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
 
+/* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
+ * level (with which they grow, as Rice's formula has it); measured in white noise. */
+#define UPCROSSINGS 0.65
+
 typedef float lanes __attribute__((vector_size(16)));
 
 struct group {
@@ -84,6 +88,24 @@ enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t
     out->freedom = (double)m * m / square;
     out->skewness = 8 * cube / pow(2 * square, 1.5);
     return STATUS_OK;
+}
+
+/* Upper tail of the gamma distribution of shape a at x > a + 1: continued fraction of the incomplete gamma
+ * function (Abramowitz and Stegun 6.5.31), evaluated backwards. */
+static double gamma_tail(double a, double x)
+{
+    double fraction = 0;
+    for (int k = 200; k >= 1; k--)
+        fraction = k * (k - a) / (x + 2 * k + 1 - a - fraction);
+    return exp(-x + a * log(x) - lgamma(a)) / (x + 1 - a - fraction);
+}
+
+double window_upcrossings(const struct window_statistics *statistics, double snr)
+{
+    double freedom = 8 / (statistics->skewness * statistics->skewness), a = freedom / 2;
+    double deviations = snr / sqrt(2 / statistics->freedom);
+    double x = (freedom + deviations * sqrt(2 * freedom)) / 2;
+    return UPCROSSINGS * (1 + snr) * gamma_tail(a, fmax(x, a + 1));
 }
 
 static void fill_group(struct bands *bands, uint32_t g)

@@ -46,6 +46,11 @@ struct window_statistics {
 /* STATUS_NO_MEMORY. For use at start. */
 enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
                                  struct window_statistics *out);
+/* How often, in one window's time, the power over a sliding window rises above 1 + snr times its mean in
+ * white Gaussian noise: the tail of a shifted chi-square with the same three cumulants (Buckley and Eagleson,
+ * "An approximation to the distribution of quadratic forms in normal random variables", 1988) times a
+ * measured constant. */
+double window_upcrossings(const struct window_statistics *statistics, double snr);
 void bands_destroy(struct bands *bands);
 
 #endif

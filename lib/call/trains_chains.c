@@ -54,6 +54,22 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
     return best;
 }
 
+/* A chain of two pulses. */
+static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score,
+                              double ln_rate)
+{
+    return (struct link){.previous = number,
+                         .first = number,
+                         .first_time_s = time_s,
+                         .n = 2,
+                         .steps = 1,
+                         .ln_interval = ln_interval,
+                         .gain = score,
+                         .score = {score, score},
+                         .ln_rates = ln_rate,
+                         .rank = score - ln_rate};
+}
+
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
 static void link_from(const struct trains *trains, struct node *node, uint64_t number, double ln_rate)
 {
@@ -63,19 +79,9 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     double ln_interval = log(interval);
     double level_cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
-    if (interval <= shape->max_interval_s && from->owner == 0) {
-        double score = -ln_interval - trains->ln_range - level_cost;
-        best = (struct link){.previous = number,
-                             .first = number,
-                             .first_time_s = from->time_s,
-                             .n = 2,
-                             .steps = 1,
-                             .ln_interval = ln_interval,
-                             .gain = score,
-                             .score = {score, score},
-                             .ln_rates = ln_rate,
-                             .rank = score - ln_rate};
-    }
+    if (interval <= shape->max_interval_s && from->owner == 0)
+        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - level_cost,
+                          ln_rate);
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
         if (from->owner && link->train != from->owner)

@@ -15,10 +15,6 @@
 #define GUARD_MARGIN 2       /* slots: the two filters are not equally late */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
 #define FLOOR_PA2 1e-30      /* below any background: digital silence */
-/* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
- * level (with which they grow, as Rice's formula has it); measured in white noise. */
-#define UPCROSSINGS 0.65
-
 enum trigger_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 
 /* The running median of a band's windows, as the mean power it stands for. */
@@ -408,23 +404,9 @@ double trigger_get_background(const struct trigger *trigger)
     return trigger->band.mean_pa2;
 }
 
-/* Upper tail of the gamma distribution of shape a at x > a + 1: continued fraction of the incomplete gamma
- * function (Abramowitz and Stegun 6.5.31), evaluated backwards. */
-static double gamma_tail(double a, double x)
-{
-    double fraction = 0;
-    for (int k = 200; k >= 1; k--)
-        fraction = k * (k - a) / (x + 2 * k + 1 - a - fraction);
-    return exp(-x + a * log(x) - lgamma(a)) / (x + 1 - a - fraction);
-}
-
 double trigger_get_noise_rate(const struct trigger *trigger, double snr)
 {
-    double freedom = 8 / (trigger->statistics.skewness * trigger->statistics.skewness), a = freedom / 2;
-    double deviations = snr / sqrt(2 / trigger->statistics.freedom);
-    double x = (freedom + deviations * sqrt(2 * freedom)) / 2;
-    double looks = UPCROSSINGS * (1 + snr) / trigger->setup.call_class->train.pulse_s;
-    return looks * gamma_tail(a, fmax(x, a + 1));
+    return window_upcrossings(&trigger->statistics, snr) / trigger->setup.call_class->train.pulse_s;
 }
 
 void trigger_destroy(struct trigger *trigger)

@@ -57,9 +57,7 @@ double trigger_get_known(const struct trigger *trigger);
 /* The band's energy since the last reset, Pa2 times input frames, and its background's mean square, Pa2. */
 double trigger_get_energy(const struct trigger *trigger);
 double trigger_get_background(const struct trigger *trigger);
-/* Pulses a second that white Gaussian noise gives at this snr (ratio) or more: looks a second times the tail
- * of the window's power, taken as a shifted chi-square with the same three cumulants (Buckley and Eagleson,
- * "An approximation to the distribution of quadratic forms in normal random variables", 1988). */
+/* Pulses a second that white Gaussian noise gives at this snr (ratio) or more: window_upcrossings. */
 double trigger_get_noise_rate(const struct trigger *trigger, double snr);
 void trigger_destroy(struct trigger *trigger);
 
