@@ -108,8 +108,8 @@ static void let_go(struct watch *watch, struct contact *contact, const char *rea
 }
 
 /* Puts the contact at a distance unless that would loosen a hold on the word of somebody who is not on
- * watch. */
-static void place(struct watch *watch, struct contact *contact, const struct note *note, int64_t when_ns)
+ * watch. Whether it ended one, and the contact has been said. */
+static bool place(struct watch *watch, struct contact *contact, const struct note *note, int64_t when_ns)
 {
     const struct permit *permit = watch->permit;
     struct contact placed = *contact;
@@ -119,14 +119,15 @@ static void place(struct watch *watch, struct contact *contact, const struct not
     if (before >= 0 && after < before && !effort_on_watch(watch, note->person)) {
         note_without_effect(watch, "%.60s is not on watch: the distance of contact %u is not taken over",
                             note->person, contact->number);
-        return;
+        return false;
     }
     *contact = placed;
     if (before < 0 || after >= 0)
-        return;
+        return false;
     char text[FLOW_TEXT_SIZE];
     contact_describe(contact, permit, watch->now_ns, text);
     let_go(watch, contact, text);
+    return true;
 }
 
 static void leave(struct watch *watch, struct contact *contact, const struct note *note)
@@ -176,11 +177,13 @@ void contact_take_sighting(struct watch *watch, const struct note *note)
         contact->bearing_from = BEARING_TRUE;
     }
     forget_old_distance(watch, contact, watch->now_ns);
+    bool said = false;
     if (!isnan(note->distance_m))
-        place(watch, contact, note, watch->now_ns);
+        said = place(watch, contact, note, watch->now_ns);
     else
         contact_detect(contact, watch->permit, watch->now_ns);
-    watch_say_contact(watch, contact);
+    if (!said)
+        watch_say_contact(watch, contact);
     if (note->leaving)
         leave(watch, contact, note);
 }
@@ -195,10 +198,11 @@ void contact_take_distance(struct watch *watch, const struct note *note)
     contact_add_cause(contact, watch->recent.causes[0]);
     if (!isnan(note->distance_m)) {
         vouch(watch, contact, note);
-        place(watch, contact, note, contact->last_ns);
+        bool said = place(watch, contact, note, contact->last_ns);
         if (contact_clears_at_ns(contact, watch->permit, watch->now_ns) >= 0)
             contact->state = CONTACT_OPEN;
-        watch_say_contact(watch, contact);
+        if (!said)
+            watch_say_contact(watch, contact);
     }
     if (note->leaving)
         leave(watch, contact, note);
