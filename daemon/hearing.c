@@ -26,12 +26,59 @@ static void take_level(struct hearing_view *hearing, uint32_t stream, const stru
         hearing->n_levels++;
 }
 
+static bool overlaps(const struct unheard *a, const struct unheard *b)
+{
+    return a->start_ns <= b->end_ns && b->start_ns <= a->end_ns;
+}
+
+/* Newest first. When the list is full the oldest stretch of the own source goes: a gap is rarer and says
+ * more. */
+static void insert_unheard(struct hearing_view *hearing, uint32_t stream, const struct unheard *unheard)
+{
+    struct hearing_unheard *list = hearing->unheard;
+    uint32_t end = hearing->n_unheard;
+    if (end == BOARD_MAX_UNHEARD) {
+        uint32_t i = end - 1;
+        while (i > 0 && list[i].unheard.cause != UNHEARD_OWN_SOURCE)
+            i--;
+        end = list[i].unheard.cause == UNHEARD_OWN_SOURCE ? i : end - 1;
+    } else
+        hearing->n_unheard++;
+    memmove(&list[1], &list[0], end * sizeof list[0]);
+    list[0] = (struct hearing_unheard){.stream = stream, .unheard = *unheard};
+}
+
+/* A blow covers several bands: on the page it is one stretch, and counts once. Returns the time that it adds.
+ */
+static int64_t take_own_source(struct hearing_view *hearing, uint32_t stream, const struct unheard *unheard)
+{
+    for (uint32_t i = 0; i < hearing->n_unheard && i < 4; i++) {
+        struct unheard *whole = &hearing->unheard[i].unheard;
+        if (hearing->unheard[i].stream != stream || whole->cause != UNHEARD_OWN_SOURCE ||
+            !overlaps(whole, unheard))
+            continue;
+        int64_t before_ns = whole->end_ns - whole->start_ns;
+        whole->start_ns = unheard->start_ns < whole->start_ns ? unheard->start_ns : whole->start_ns;
+        whole->end_ns = unheard->end_ns > whole->end_ns ? unheard->end_ns : whole->end_ns;
+        whole->low_hz = unheard->low_hz < whole->low_hz ? unheard->low_hz : whole->low_hz;
+        whole->high_hz = unheard->high_hz > whole->high_hz ? unheard->high_hz : whole->high_hz;
+        return whole->end_ns - whole->start_ns - before_ns;
+    }
+    insert_unheard(hearing, stream, unheard);
+    return unheard->end_ns - unheard->start_ns;
+}
+
 static void take_unheard(struct hearing_view *hearing, uint32_t stream, const struct unheard *unheard)
 {
-    hearing->n_unheard =
-        push_front(hearing->unheard, hearing->n_unheard, BOARD_MAX_UNHEARD, sizeof hearing->unheard[0]);
-    hearing->unheard[0] = (struct hearing_unheard){.stream = stream, .unheard = *unheard};
-    if (stream >= 1 && stream <= hearing->n_streams)
+    bool counts = stream >= 1 && stream <= hearing->n_streams;
+    if (unheard->cause == UNHEARD_OWN_SOURCE) {
+        int64_t more_ns = take_own_source(hearing, stream, unheard);
+        if (counts)
+            hearing->streams[stream - 1].masked_s += time_to_s(more_ns);
+        return;
+    }
+    insert_unheard(hearing, stream, unheard);
+    if (counts)
         hearing->streams[stream - 1].unheard_s += time_to_s(unheard->end_ns - unheard->start_ns);
 }
 

@@ -56,7 +56,7 @@ function showFacts(advice, found) {
   const starts = advice && ["do not start", "may start"].includes(advice.advice);
   setText($("until_title"), starts ? "Earliest start" : "Earliest restart");
   const left = until === null ? 0 : until - watchNow();
-  setText($("until"), until === null ? (!advice ? "–" : advice.advice === "may start" ? "now" : "when allowed") : utc(until) + " UTC");
+  setText($("until"), until === null ? (!advice || advice.advice === "carry on" ? "–" : advice.advice === "may start" ? "now" : "when allowed") : utc(until) + " UTC");
   const wait = until === null ? "" : local(until) + " local · " + (left > 0 ? "in " + span(left) : "now, if all else is met") + ". ";
   setText($("requires"), wait + (advice && advice.requires ? "Requires: " + advice.requires + "." : ""));
 }

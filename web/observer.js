@@ -99,11 +99,12 @@ function drawHearing(state) {
   keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
     node.classList.toggle("bad", !stream.hearing);
     setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));
-    setText(node.lastChild, ` ${stream.channels} channel${stream.channels === 1 ? "" : "s"}, ${stream.rate_hz / 1000} kHz, ${stream.input}${stream.health ? ": " + stream.health : ""}. Unheard so far: ${span(stream.unheard_s)}.`);
+    setText(node.lastChild, ` ${stream.channels} channel${stream.channels === 1 ? "" : "s"}, ${stream.rate_hz / 1000} kHz, ${stream.input}${stream.health ? ": " + stream.health : ""}. Unheard so far: ${span(stream.unheard_s)}; covered by the own source: ${span(stream.masked_s)}.`);
   });
   const record = state.recording;
   setText($("recording"), record.recording ? "Recording: entry " + record.entry + ", complete to " + utc(record.committed_s) + " UTC." : "NOT RECORDING: " + record.text);
-  const gaps = state.unheard.length ? state.unheard.slice(0, 5) : [null];
+  const deaf = state.unheard.filter((gap) => gap.cause !== "own source");
+  const gaps = deaf.length ? deaf.slice(0, 5) : [null];
   keyed($("unheard"), gaps, (gap) => gap && [gap.stream, gap.channel, gap.start_s, gap.cause].join(), () => el("li"), (node, gap) =>
     setText(node, !gap ? "None." : `${utc(gap.start_s)} UTC, ${(gap.end_s - gap.start_s).toFixed(1)} s: ${gap.cause}, ${gap.channel ? "channel " + gap.stream + "." + gap.channel : "all of stream " + gap.stream}`));
 }

@@ -45,6 +45,7 @@ struct hearing_stream {
     int64_t heard_ns;             /* watch time up to which the stream has been heard */
     double block_age_s;           /* since the last block arrived; NAN where none has */
     double unheard_s;             /* unheard time of this run so far */
+    double masked_s; /* time of this run in which the own source covered some band */
 };
 
 struct hearing_level {

@@ -22,6 +22,7 @@ static void streams(struct text *text, const struct hearing_view *hearing)
         json_time(text, "heard_s", stream->heard_ns);
         json_number(text, "block_age_s", stream->block_age_s, 3);
         json_number(text, "unheard_s", stream->unheard_s, 3);
+        json_number(text, "masked_s", stream->masked_s, 3);
         text_append(text, "}");
     }
     text_append(text, "]");
