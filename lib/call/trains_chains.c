@@ -89,7 +89,9 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
         double ratio = ln_interval - link->ln_interval;
         uint32_t m = likeliest_steps(trains, ratio);
         double d = ratio - trains->ln_m[m];
-        if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE])
+        double step_s = interval / m; /* a chain may drift, but not out of its class */
+        if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
+            step_s > shape->max_interval_s)
             continue;
         double common = trains->ln_steps[m] - ln_interval - level_cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};

@@ -181,6 +181,37 @@ static void animals_are_found_with_class_and_interval(void **state)
     }
 }
 
+/* Off the axis a sperm whale's click is several pulses a few ms apart with a tail of some 10 ms (Mohl 2003;
+ * spacing and tail from memory): one click each, and no other animal's. */
+static void multipulse_clicks_are_one_click_each(void **state)
+{
+    (void)state;
+    static const double spacings_s[] = {0.0025, 0.005, 0.008}, amplitudes[] = {0.35, -1, 0.35, -0.12, 0.05};
+    for (int s = 0; s < 3; s++) {
+        struct hearing *hearing = listen_for(96000, 20, 80 + (uint64_t)s);
+        uint32_t sent = 0, n_other;
+        for (double t = 5; t < 19; t += 0.7 * exp(0.04 * random_normal(&hearing->random)), sent++) {
+            for (int p = 0; p < 5; p++)
+                clicks_add_gabor(hearing->x, hearing->n, 96000, (t + p * spacings_s[s]) * 96000,
+                                 0.02 * amplitudes[p], 10e3, 45e-6);
+            for (size_t k = 0; k < 4000; k++)
+                hearing->x[(size_t)(t * 96000) + k] +=
+                    (float)(0.002 * exp(-(double)k / 960) * random_normal(&hearing->random));
+        }
+        hear_in_chunks(hearing, 4096);
+        double interval_s;
+        uint32_t n = pulses_given(hearing, "sperm whale click train", &interval_s, &n_other);
+        printf("# figure sperm whale off the axis, pulses %.1f ms apart: %u of %u clicks, interval %.3f s, "
+               "%u of other "
+               "classes\n",
+               1000 * spacings_s[s], n, sent, interval_s, n_other);
+        assert_true(n >= 0.8 * sent && n <= sent + 2);
+        assert_near(interval_s, 0.7, 0.05);
+        assert_int_equal(n_other, 0);
+        done(hearing);
+    }
+}
+
 static void a_long_train_is_given_in_pieces(void **state)
 {
     (void)state;
@@ -499,6 +530,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(animals_are_found_with_class_and_interval),
+        cmocka_unit_test(multipulse_clicks_are_one_click_each),
         cmocka_unit_test(a_long_train_is_given_in_pieces),
         cmocka_unit_test(groups_of_dolphins_are_heard),
         cmocka_unit_test(shrimp_are_no_train),
