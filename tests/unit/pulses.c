@@ -511,6 +511,7 @@ static void cost(void **state)
                 pulses_push(pulses, hearing->x + at, 4096, &sink);
             printf("# figure cost at %.0f kHz, %s: %.2f ns a sample\n", rates_hz[r] / 1000,
                    busy ? "busy" : "quiet", (cpu_s() - start) * 1e9 / (double)hearing->n);
+            pulses_destroy(pulses);
             done(hearing);
         }
 }
