@@ -13,6 +13,8 @@
                          deviation of 1.4 dB */
 #define QUIET_STEPS 4 /* 20 ms back near the background end a stretch */
 #define LATE_BURST_STEPS 5   /* 25 ms: a burst that begins so late is still the same event */
+#define STALL_DB_S 8.0       /* a tail that falls more slowly is not told from another sound that stays up */
+#define STALL_ABOVE 4.0F     /* within 6 dB of the background the tail's end is not judged by its slope */
 #define BEFORE_STEPS 2       /* the 5 % energy point lies after the true onset */
 #define BACKGROUND_STEPS 100 /* 0.5 s before the onset */
 #define STRETCHES 64
@@ -28,6 +30,9 @@ struct band {
     uint32_t n_stretches;
     bool open; /* the newest stretch has no end yet */
     int64_t open_limit, quiet_since;
+    int64_t tail_from;   /* from this step on the band has to fall */
+    int64_t stall_steps; /* over how long its fall is judged */
+    float stall_ratio;   /* power after less power before that is no fall */
     double background;
 };
 
@@ -69,8 +74,14 @@ enum status gate_create(double rate_hz, double memory_s, struct gate **out)
     gate->n_bands = choose_bands(rate_hz, edges);
     gate->n_memory = (uint32_t)ceil((memory_s + GATE_LONGEST_S) / STEP_S) + BACKGROUND_STEPS;
     for (uint32_t b = 0; b < gate->n_bands; b++) {
-        gate->bands[b].low_hz = edges[b].low_hz;
-        gate->bands[b].high_hz = edges[b].high_hz;
+        struct band *band = &gate->bands[b];
+        band->low_hz = edges[b].low_hz;
+        band->high_hz = edges[b].high_hz;
+        /* Two means of a band's noise over T differ by 6.1 / sqrt(B T) dB (one deviation). A tail of 24 dB a
+         * second is told from one of 8 with four deviations where (24 - 8) T is 4 times that. */
+        double stall_s = pow(1.53 / sqrt(band->high_hz - band->low_hz), 2.0 / 3.0);
+        band->stall_steps = (int64_t)ceil(stall_s / STEP_S);
+        band->stall_ratio = (float)pow(10, -0.1 * STALL_DB_S * (double)band->stall_steps * STEP_S);
     }
     gate->block = calloc(gate->step_frames, sizeof *gate->block);
     gate->power = calloc((size_t)gate->n_bands * gate->n_memory, sizeof *gate->power);
@@ -160,11 +171,33 @@ static void give(const struct gate *gate, struct band *band, const struct gate_m
     sink->take(sink->context, &masked);
 }
 
+/* A tail falls. A band that stays up is held by another sound, an animal's for all we know: it must not be
+ * hidden. */
+static bool has_stalled(const struct gate *gate, uint32_t b, int64_t step)
+{
+    const struct band *band = &gate->bands[b];
+    int64_t n = band->stall_steps;
+    if (step + 1 < band->tail_from + 2 * n)
+        return false;
+    float before = 0, after = 0;
+    for (int64_t k = 0; k < n; k++) {
+        after += power_at(gate, b, step - k);
+        before += power_at(gate, b, step - n - k);
+    }
+    float background = (float)((double)n * band->background);
+    return after > STALL_ABOVE * background && after - background > band->stall_ratio * (before - background);
+}
+
 /* Takes one more step into the open stretch, or ends it. */
 static void extend(struct gate *gate, uint32_t b, int64_t step, const struct gate_masked_sink *sink)
 {
     struct band *band = &gate->bands[b];
     struct stretch *stretch = newest(band);
+    if (has_stalled(gate, b, step)) {
+        stretch->end = step + 1 - band->stall_steps;
+        give(gate, band, sink);
+        return;
+    }
     if (power_at(gate, b, step) > ABOVE * band->background) {
         band->quiet_since = step + 1;
         stretch->end = step + 1;
@@ -225,6 +258,7 @@ static void mask_band(struct gate *gate, uint32_t b, int64_t onset, int64_t t90,
         return;
     if (band->open && start <= newest(band)->end) { /* the sound before still covers it: one stretch */
         band->open_limit = onset + (int64_t)(GATE_LONGEST_S / STEP_S);
+        band->tail_from = onset + t90 + LATE_BURST_STEPS;
         return;
     }
     if (band->open)
@@ -237,6 +271,7 @@ static void mask_band(struct gate *gate, uint32_t b, int64_t onset, int64_t t90,
     *newest(band) = (struct stretch){start, start};
     band->open = true;
     band->quiet_since = start + LATE_BURST_STEPS;
+    band->tail_from = onset + t90 + LATE_BURST_STEPS;
     band->open_limit = onset + (int64_t)(GATE_LONGEST_S / STEP_S);
     for (int64_t step = start; step < gate->n_steps && band->open; step++)
         extend(gate, b, step, sink);

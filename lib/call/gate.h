@@ -6,8 +6,9 @@
  * 3 dB above its background and stays there for 20 ms; a band in which the impulse does not stand out is not
  * masked at all. A later burst of the same event (ghost cavitation of airguns at 10 to 20 kHz, 7 to 14 ms
  * after the main peak: Landro et al. 2013) is taken along while it begins within 25 ms. Masked time is at
- * most GATE_LONGEST_S an impulse; the background is the median of the steps before, those that are masked
- * left out.
+ * most GATE_LONGEST_S an impulse, and ends where the band stops falling: a tail falls, and what stays up is
+ * another sound, which must not be hidden; the background is the median of the steps before, those that are
+ * masked left out.
  *
  * Order of use: gate_push with every sample that the detectors get; gate_push_impulse when an impulse of the
  * own source becomes known (at most memory_s after its onset); then gate_hides for calls, and
