@@ -1,4 +1,4 @@
-/* Francois and Garrison (1982); their equation is in kHz and dB/km. */
+/* Francois and Garrison (1982), Ainslie and McColm (1998); their equations are in kHz and dB/km. */
 #include "sea/absorption.h"
 #include <math.h>
 
@@ -26,6 +26,18 @@ struct absorption absorption_of(double temperature_c, double salinity, double de
         .sulphate_hz = 1e3 * 8.17 * pow(10.0, 8.0 - 1990.0 / kelvin) / (1.0 + 0.0018 * (s - 35.0)),
         .sulphate_db_m_hz = sulphate * DB_M_PER_HZ_FROM_KM_KHZ,
         .water_db_m_hz2 = water * DB_M_PER_HZ2_FROM_KM_KHZ2,
+    };
+}
+
+struct absorption absorption_simplified(double temperature_c, double salinity, double depth_m, double ph)
+{
+    double t = temperature_c, s = salinity, z_km = depth_m / 1e3;
+    return (struct absorption){
+        .boric_hz = 1e3 * 0.78 * sqrt(s / 35.0) * exp(t / 26.0),
+        .boric_db_m_hz = 0.106 * exp((ph - 8.0) / 0.56) * DB_M_PER_HZ_FROM_KM_KHZ,
+        .sulphate_hz = 1e3 * 42.0 * exp(t / 17.0),
+        .sulphate_db_m_hz = 0.52 * (1.0 + t / 43.0) * (s / 35.0) * exp(-z_km / 6.0) * DB_M_PER_HZ_FROM_KM_KHZ,
+        .water_db_m_hz2 = 0.00049 * exp(-(t / 27.0 + z_km / 17.0)) * DB_M_PER_HZ2_FROM_KM_KHZ2,
     };
 }
 
