@@ -10,14 +10,6 @@ static const char *const action_words[] = {
     [ACTION_LOG] = "log",   [ACTION_PREPARE] = "prepare", [ACTION_DELAY] = "delay",
     [ACTION_HOLD] = "hold", [ACTION_REDUCE] = "reduce",   [ACTION_STOP] = "stop",
 };
-static const char *const mark_words[] = {
-    [MARK_READ] = "read",
-    [MARK_SECONDARY] = "secondary",
-    [MARK_MEMORY_HIGH] = "memory, high",
-    [MARK_MEMORY_MEDIUM] = "memory, medium",
-    [MARK_MEMORY_LOW] = "memory, low",
-    [MARK_INVENTED] = "invented",
-};
 static const char *const activity_words[] = {
     [ACTIVITY_PILING] = "piling", [ACTIVITY_SEISMIC] = "seismic", [ACTIVITY_EXPLOSIVES] = "explosives"};
 static const char *const origin_words[] = {
@@ -50,7 +42,7 @@ const char *permit_action_text(enum permit_action action)
 
 const char *permit_mark_text(enum value_mark mark)
 {
-    return WORD_OF(mark_words, mark);
+    return mark_text(mark);
 }
 
 const char *permit_activity_text(enum permit_activity activity)

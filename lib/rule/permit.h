@@ -1,8 +1,9 @@
 /* The conditions in force, as data. A permit is one file in config/permits; daemon/settings/permit.c loads
- * it. Every value carries its mark (read, secondary, memory high / medium / low) and its source. */
+ * it. Every value carries its mark (base/mark.h) and its source. */
 #ifndef RULE_PERMIT_H
 #define RULE_PERMIT_H
 
+#include "base/mark.h"
 #include "base/status.h"
 #include "flow.h"
 #include <stdbool.h>
@@ -24,15 +25,6 @@ enum permit_action { ACTION_LOG, ACTION_PREPARE, ACTION_DELAY, ACTION_HOLD, ACTI
 
 /* What a call of a group means when nobody knows its distance. There is no default: the permit must say. */
 enum unknown_policy { UNKNOWN_NOT_STATED, UNKNOWN_INSIDE, UNKNOWN_ASK_OBSERVER, UNKNOWN_IGNORE };
-
-enum value_mark {
-    MARK_READ,
-    MARK_SECONDARY,
-    MARK_MEMORY_HIGH,
-    MARK_MEMORY_MEDIUM,
-    MARK_MEMORY_LOW,
-    MARK_INVENTED
-};
 
 /* What a watch that was kept through a break is worth afterwards. */
 enum break_watch {

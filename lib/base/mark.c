@@ -1,0 +1,9 @@
+/* Words for marks. */
+#include "base/mark.h"
+
+const char *mark_text(enum value_mark mark)
+{
+    static const char *const words[MARK_COUNT] = {"read",           "secondary",   "memory, high",
+                                                  "memory, medium", "memory, low", "invented"};
+    return (unsigned)mark < MARK_COUNT ? words[mark] : "";
+}

@@ -1,0 +1,18 @@
+/* How sure a number taken from a document is: every value of a permit or a criterion carries one. */
+#ifndef BASE_MARK_H
+#define BASE_MARK_H
+
+enum value_mark {
+    MARK_READ,
+    MARK_SECONDARY,
+    MARK_MEMORY_HIGH,
+    MARK_MEMORY_MEDIUM,
+    MARK_MEMORY_LOW,
+    MARK_INVENTED,
+    MARK_COUNT
+};
+
+/* "read", "secondary", "memory, high", "memory, medium", "memory, low", "invented"; never NULL. */
+const char *mark_text(enum value_mark mark);
+
+#endif
