@@ -87,8 +87,7 @@ static void take_call(void *context, const struct found_call *call)
     ear->sink.call(ear->sink.context, ear->channel, call);
 }
 
-/* Own samples from interleaved ones, and their pascals; returns how many were not finite. */
-static uint32_t pick_channel(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
+uint32_t ear_pick(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
 {
     uint32_t bad = 0;
     const float *from = frames + (ear->channel - 1);
@@ -108,7 +107,7 @@ bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_chann
     const struct impulse_sink impulses = {take_impulse, ear};
     const struct found_sink calls = {take_call, ear};
     const struct gate_masked_sink masked = {take_masked, ear};
-    uint32_t bad = pick_channel(ear, frames, n, n_channels);
+    uint32_t bad = ear_pick(ear, frames, n, n_channels);
     ear->n_not_finite += bad;
     health_push(ear->health, ear->samples, n, &faults);
     meter_push(ear->meter, ear->pascals, n, &levels);

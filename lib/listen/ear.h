@@ -60,6 +60,9 @@ void ear_destroy(struct ear *ear);
 /* Takes its channel of n interleaved frames of n_channels; false when samples among them were not finite
  * (they count as 0). */
 bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels);
+/* Its first step: own samples from the interleaved ones into `samples`, as pascals into `pascals`; returns
+ * how many were not finite. */
+uint32_t ear_pick(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels);
 /* After both took the same frames: `later` has the fault of a duplicate while it equals `earlier`. */
 void ear_compare(const struct ear *earlier, struct ear *later);
 /* Sound was lost: what is open ends; the next frame is next_frame. */
