@@ -3,13 +3,14 @@
 #include "base/units.h"
 #include "dsp/lanes.h"
 #include "level/decidecades.h"
+#include "level/second_cells.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
 #define RUN 64u /* samples summed in single precision before the double sums take them */
 #define DC_SECONDS 8
-#define HELD 4 /* seconds whose bands are not complete yet, at most two in fact */
+#define HELD SECOND_CELLS_HELD /* seconds whose bands are not complete yet, at most two in fact */
 
 /* What the samples of one second gave. */
 struct running {
@@ -31,6 +32,7 @@ struct meter {
     bool know_offset;
     float offset_pa; /* mean of the first hop, taken off before the decidecades so that they see no step */
     struct decidecades *decidecades;
+    struct second_cells *cells;
     float *pending; /* [hop] frames on their way to the decidecades */
 };
 
@@ -45,6 +47,8 @@ enum status meter_create(double rate_hz, bool relative, struct meter **out)
     meter->relative = relative;
     meter->n_bands = decidecades_count(rate_hz);
     enum status status = decidecades_create(meter->rate_hz, &meter->decidecades);
+    if (!status)
+        status = second_cells_create(meter->rate_hz, relative ? 1e-6 : 1, &meter->cells);
     if (!status) {
         meter->hop = decidecades_get_hop(meter->decidecades);
         meter->pending = malloc(meter->hop * sizeof *meter->pending);
@@ -64,6 +68,7 @@ void meter_destroy(struct meter *meter)
     if (!meter)
         return;
     decidecades_destroy(meter->decidecades);
+    second_cells_destroy(meter->cells);
     free(meter->pending);
     free(meter);
 }
@@ -76,6 +81,7 @@ void meter_reset(struct meter *meter, uint64_t next_frame)
     meter->know_dc = meter->know_offset = false;
     memset(meter->seconds, 0, sizeof meter->seconds);
     decidecades_reset(meter->decidecades, next_frame);
+    second_cells_reset(meter->cells);
 }
 
 static double band_db(const struct decidecade_sums *sums, uint32_t band, double rate_hz)
@@ -97,10 +103,11 @@ static double follow_dc(struct meter *meter, double mean)
 
 static void give(struct meter *meter, const struct level_sink *sink)
 {
-    struct running *running = &meter->seconds[meter->next_second % HELD];
+    const uint64_t second = meter->next_second++;
+    struct running *running = &meter->seconds[second % HELD];
     struct decidecade_sums sums;
-    decidecades_take(meter->decidecades, meter->next_second, &sums);
-    meter->next_second++;
+    struct second_measures measures;
+    decidecades_take(meter->decidecades, second, &sums);
     struct found_level level = {.start_frame = running->start_frame,
                                 .known_frame = meter->next_frame - 1,
                                 .frames = running->frames,
@@ -111,10 +118,15 @@ static void give(struct meter *meter, const struct level_sink *sink)
         double mean_square = running->sum_squares / running->frames - 2 * dc * mean + dc * dc;
         level.spl_db = units_spl_db(fmax(mean_square, 0));
         level.peak_db = units_peak_db(fmax(running->greatest - dc, dc - running->least));
+        second_cells_take(meter->cells, second, dc, &measures);
+        level.fast_max_db = units_spl_db(measures.fast_max_pa2);
+        level.slow_max_db = units_spl_db(measures.slow_max_pa2);
+        level.moments = measures.moments;
         for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
             level.band_db[b] = b < meter->n_bands ? band_db(&sums, b, meter->rate_hz) : NAN;
         sink->take(sink->context, &level);
-    }
+    } else
+        second_cells_take(meter->cells, second, meter->dc_pa, &measures);
     memset(running, 0, sizeof *running);
 }
 
@@ -184,6 +196,7 @@ static void count_pending(struct meter *meter)
     if (running->frames == 0)
         running->start_frame = from;
     add_samples(running, meter->pending + meter->counted, n);
+    second_cells_push(meter->cells, from, meter->pending + meter->counted, n);
     meter->counted = meter->fill;
 }
 

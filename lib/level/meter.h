@@ -5,6 +5,10 @@
  * average over about 8 s, since a converter's offset is no sound. The peak is that of the samples, not of the
  * wave between them. Seconds are [k rate, (k + 1) rate) in frame numbers.
  *
+ * Fast and slow are the greatest levels in the second under the time weightings of IEC 61672-1 (125 ms and 1
+ * s, level/time_weighting.h), looked at each millisecond: within 0.04 dB of the continuous maximum. They
+ * begin from silence after a reset, so in the first seconds the slow one reads low.
+ *
  * Call order: create; reset at the start and after each gap; push; finish before a reset or at the end;
  * destroy. */
 #ifndef LEVEL_METER_H
@@ -12,6 +16,7 @@
 
 #include "base/status.h"
 #include "level/level.h"
+#include "level/moments.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -23,6 +28,8 @@ struct found_level {
     uint64_t known_frame; /* the last frame needed to give it */
     uint32_t frames;      /* heard in the second: the rate, or less beside a gap */
     double spl_db, peak_db;
+    double fast_max_db, slow_max_db; /* greatest SPL under fast and slow time weighting, dB re 1 uPa */
+    struct moments moments;          /* of the samples, pascals */
     uint32_t n_bands;
     double band_db[LEVEL_MAX_BANDS]; /* NAN where less than 1 / bandwidth of sound was analysed */
     bool relative;
