@@ -188,13 +188,23 @@ static bool has_stalled(const struct gate *gate, uint32_t b, int64_t step)
     return after > STALL_ABOVE * background && after - background > band->stall_ratio * (before - background);
 }
 
+/* Where the tail had fallen furthest before another sound held the band. */
+static int64_t least_step(const struct gate *gate, uint32_t b, int64_t step)
+{
+    int64_t least = step;
+    for (int64_t k = step; k > step - 2 * gate->bands[b].stall_steps; k--)
+        if (power_at(gate, b, k) < power_at(gate, b, least))
+            least = k;
+    return least;
+}
+
 /* Takes one more step into the open stretch, or ends it. */
 static void extend(struct gate *gate, uint32_t b, int64_t step, const struct gate_masked_sink *sink)
 {
     struct band *band = &gate->bands[b];
     struct stretch *stretch = newest(band);
     if (has_stalled(gate, b, step)) {
-        stretch->end = step + 1 - band->stall_steps;
+        stretch->end = least_step(gate, b, step) + 1;
         give(gate, band, sink);
         return;
     }
