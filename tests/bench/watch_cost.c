@@ -1,13 +1,19 @@
 /* What the watch costs, as JSON: nanoseconds a sample of each stage and of the whole on the busy scene,
  * beside the bare spectra (window, FFTW in single precision with 1024 points and an estimated plan, half
  * overlap, magnitude), on the same samples, in the same run, with the same compiler flags. Only ratios within
- * one run mean anything on a shared machine.
+ * one run mean anything on a shared machine; each figure is the least of ROUNDS, taken in turn.
+ *
+ * The stages are run as the whole runs them, each block through every channel, so that they find the caches
+ * as they do there. resident_mib is what the whole added to the process: objects and what they touched.
  *
  * usage: watch_cost [RATE_HZ CHANNELS [SECONDS]] */
 #include "base/time.h"
+#include "float_mode.h"
 #include "listen/blocks.h"
 #include "listen/ear.h"
+#include "listen/joiner.h"
 #include "listen/listen.h"
+#include "listen/strips.h"
 #include "rule/watch.h"
 #include "scene/render.h"
 #include "settings/catalogue.h"
@@ -15,14 +21,29 @@
 #include "settings/scene.h"
 #include <fftw3.h>
 #include <math.h>
+#include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
-#include <string.h>
-#include <sys/resource.h>
 #include <time.h>
+#include <unistd.h>
 
-enum stage { STAGE_HEALTH, STAGE_METER, STAGE_IMPULSES, STAGE_TONES, STAGE_PULSES, STAGE_COUNT };
-static const char *const stage_names[STAGE_COUNT] = {"health", "levels", "impulses", "tones", "pulses"};
+#define ROUNDS 3
+
+enum stage {
+    STAGE_BLOCKS,
+    STAGE_PICK,
+    STAGE_HEALTH,
+    STAGE_LEVELS,
+    STAGE_GATE,
+    STAGE_IMPULSES,
+    STAGE_TONES,
+    STAGE_PULSES,
+    STAGE_STRIPS,
+    STAGE_COMPARE,
+    STAGE_COUNT
+};
+static const char *const stage_names[STAGE_COUNT] = {"blocks",   "pick",  "health", "levels", "gate",
+                                                     "impulses", "tones", "pulses", "strips", "compare"};
 
 struct sound {
     double rate_hz;
@@ -43,28 +64,73 @@ static double cpu_s(void)
     return (double)now.tv_sec + (double)now.tv_nsec * 1e-9;
 }
 
-static void ignore_level(void *context, const struct found_level *level)
+/* What one look at that clock costs: it is a system call, and there are many between the stages. */
+static double clock_cost_s(void)
+{
+    enum { LOOKS = 20000 };
+    double start = cpu_s(), end = start;
+    for (int i = 0; i < LOOKS; i++)
+        end = cpu_s();
+    return (end - start) / LOOKS;
+}
+
+static void ignore_level(void *context, uint32_t channel, const struct found_level *level)
 {
     (void)context;
+    (void)channel;
     (void)level;
 }
 
-static void ignore_fault(void *context, const struct found_fault *fault)
+static void ignore_fault(void *context, uint32_t channel, const struct found_fault *fault)
+{
+    (void)context;
+    (void)channel;
+    (void)fault;
+}
+
+static void ignore_impulse(void *context, uint32_t channel, const struct found_impulse *impulse)
+{
+    (void)context;
+    (void)channel;
+    (void)impulse;
+}
+
+static void ignore_call(void *context, uint32_t channel, const struct found_call *call)
+{
+    (void)context;
+    (void)channel;
+    (void)call;
+}
+
+static void ignore_masked(void *context, uint32_t channel, const struct gate_masked *masked)
+{
+    (void)context;
+    (void)channel;
+    (void)masked;
+}
+
+static void drop_fault(void *context, const struct found_fault *fault)
 {
     (void)context;
     (void)fault;
 }
 
-static void ignore_impulse(void *context, const struct found_impulse *impulse)
-{
-    (void)context;
-    (void)impulse;
-}
-
-static void ignore_call(void *context, const struct found_call *call)
+static void drop_call(void *context, const struct found_call *call)
 {
     (void)context;
     (void)call;
+}
+
+static void drop_masked(void *context, const struct gate_masked *masked)
+{
+    (void)context;
+    (void)masked;
+}
+
+static void drop_column(void *context, const struct column *column)
+{
+    (void)context;
+    (void)column;
 }
 
 static bool render_busy(struct sound *sound)
@@ -90,6 +156,26 @@ static bool render_busy(struct sound *sound)
     render_destroy(render);
     scene_file_destroy(&file);
     return true;
+}
+
+static void push_all(const struct sound *sound, struct blocks *blocks, const struct block_sink *sink)
+{
+    for (uint64_t at = 0; at < sound->n_frames; at += 4096) {
+        uint64_t n = sound->n_frames - at < 4096 ? sound->n_frames - at : 4096;
+        blocks_push(blocks, 0, sound->frames + at * sound->n_channels, (uint32_t)n, sink);
+    }
+}
+
+/* What the process has in memory now. */
+static double resident_mib(void)
+{
+    unsigned long long size = 0, resident = 0;
+    FILE *file = fopen("/proc/self/statm", "r");
+    if (!file || fscanf(file, "%llu %llu", &size, &resident) != 2)
+        resident = 0;
+    if (file)
+        fclose(file);
+    return (double)resident * (double)sysconf(_SC_PAGESIZE) / 1048576;
 }
 
 /* Window, FFT, magnitude of one channel, half overlapped. */
@@ -127,52 +213,113 @@ static double bare_spectra_s(const struct sound *sound)
     return spent;
 }
 
-/* Each stage alone, channel after channel, block after block. */
-static void stages_s(const struct sound *sound, double out[STAGE_COUNT])
+/* What one channel finds is dropped, but that an impulse goes to its gate. */
+struct dropped {
+    struct ear *ear;
+};
+
+static void drop_level(void *context, const struct found_level *level)
 {
-    uint32_t block = flow_block_frames(sound->rate_hz);
-    float *samples = malloc(block * sizeof(float)), *pascals = malloc(block * sizeof(float));
-    float scale = (float)calibration_pa_per_unit(&sound->calibration);
+    const struct dropped *dropped = context;
+    health_take_level(dropped->ear->health, level, &(struct fault_sink){drop_fault, NULL});
+}
+
+static void drop_impulse(void *context, const struct found_impulse *impulse)
+{
+    const struct dropped *dropped = context;
+    if (dropped->ear->gate)
+        gate_push_impulse(dropped->ear->gate, impulse->onset_frame, impulse->t90_s,
+                          &(struct gate_masked_sink){drop_masked, NULL});
+}
+
+/* As ear_push, with a clock between the stages. */
+static void push_ear(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels, double clock_s,
+                     double *out)
+{
+    struct dropped dropped = {ear};
+    const struct found_sink calls = {drop_call, NULL};
+    double times[STAGE_STRIPS + 1];
+    times[STAGE_PICK] = cpu_s();
+    ear_pick(ear, frames, n, n_channels);
+    times[STAGE_HEALTH] = cpu_s();
+    health_push(ear->health, ear->samples, n, &(struct fault_sink){drop_fault, NULL});
+    times[STAGE_LEVELS] = cpu_s();
+    meter_push(ear->meter, ear->pascals, n, &(struct level_sink){drop_level, &dropped});
+    times[STAGE_GATE] = cpu_s();
+    if (ear->gate)
+        gate_push(ear->gate, ear->pascals, n, &(struct gate_masked_sink){drop_masked, NULL});
+    times[STAGE_IMPULSES] = cpu_s();
+    if (ear->impulses)
+        impulse_finder_push(ear->impulses, ear->pascals, n, &(struct impulse_sink){drop_impulse, &dropped});
+    times[STAGE_TONES] = cpu_s();
+    tones_push(ear->tones, ear->pascals, n, &calls);
+    times[STAGE_PULSES] = cpu_s();
+    pulses_push(ear->pulses, ear->pascals, n, &calls);
+    times[STAGE_STRIPS] = cpu_s();
+    for (int s = STAGE_PICK; s < STAGE_STRIPS; s++)
+        out[s] += times[s + 1] - times[s] - clock_s;
+}
+
+struct stages {
+    const struct sound *sound;
+    struct ear ears[FLOW_MAX_CHANNELS];
+    struct strips *strips;
+    double clock_s, spent_s[STAGE_COUNT];
+};
+
+static void run_stages(void *context, const struct block *block)
+{
+    struct stages *stages = context;
+    const struct time_map map = {.rate_hz = stages->sound->rate_hz};
+    double start = cpu_s();
+    for (uint32_t c = 0; c < block->n_channels; c++)
+        push_ear(&stages->ears[c], block->samples, block->n_frames, block->n_channels, stages->clock_s,
+                 stages->spent_s);
+    double ears_end = cpu_s();
+    strips_push(stages->strips, stages->ears[0].pascals, block->n_frames, &map,
+                &(struct column_sink){drop_column, NULL});
+    double strips_end = cpu_s();
+    for (uint32_t later = 1; later < block->n_channels; later++)
+        for (uint32_t earlier = 0; earlier < later; earlier++)
+            ear_compare(&stages->ears[earlier], &stages->ears[later]);
+    double end = cpu_s();
+    stages->spent_s[STAGE_STRIPS] += strips_end - ears_end - stages->clock_s;
+    stages->spent_s[STAGE_COMPARE] += end - strips_end - stages->clock_s;
+    stages->spent_s[STAGE_BLOCKS] -= end - start + stages->clock_s; /* the rest of the time is theirs */
+}
+
+/* Each stage by itself, each block through every channel; false without memory. */
+static bool stages_s(const struct sound *sound, double out[STAGE_COUNT])
+{
+    static struct stages stages;
+    struct blocks *blocks;
+    stages = (struct stages){.sound = sound, .clock_s = clock_cost_s()};
+    struct ear_setup setup = {
+        .rate_hz = sound->rate_hz,
+        .max_frames = flow_block_frames(sound->rate_hz),
+        .calibration = sound->calibration,
+        .classes = catalogue.classes,
+        .n_classes = catalogue.n_classes,
+        .sink = {ignore_level, ignore_fault, ignore_impulse, ignore_call, ignore_masked, NULL}};
     for (uint32_t c = 0; c < sound->n_channels; c++) {
-        struct health *health;
-        struct meter *meter;
-        struct impulse_finder *impulses = NULL;
-        struct tones *tones;
-        struct pulses *pulses;
-        health_create(sound->rate_hz, &sound->calibration, &health);
-        meter_create(sound->rate_hz, false, &meter);
-        if (c == 0)
-            impulse_finder_create(sound->rate_hz, scale, &impulses);
-        tones_create(catalogue.classes, catalogue.n_classes, sound->rate_hz, &tones);
-        pulses_create(catalogue.classes, catalogue.n_classes, sound->rate_hz, &pulses);
-        for (uint64_t at = 0; at + block <= sound->n_frames; at += block) {
-            for (uint32_t i = 0; i < block; i++) {
-                samples[i] = sound->frames[(at + i) * sound->n_channels + c];
-                pascals[i] = samples[i] * scale;
-            }
-            double times[STAGE_COUNT + 1] = {cpu_s()};
-            health_push(health, samples, block, &(struct fault_sink){ignore_fault, NULL});
-            times[1] = cpu_s();
-            meter_push(meter, pascals, block, &(struct level_sink){ignore_level, NULL});
-            times[2] = cpu_s();
-            if (impulses)
-                impulse_finder_push(impulses, pascals, block, &(struct impulse_sink){ignore_impulse, NULL});
-            times[3] = cpu_s();
-            tones_push(tones, pascals, block, &(struct found_sink){ignore_call, NULL});
-            times[4] = cpu_s();
-            pulses_push(pulses, pascals, block, &(struct found_sink){ignore_call, NULL});
-            times[5] = cpu_s();
-            for (int s = 0; s < STAGE_COUNT; s++)
-                out[s] += times[s + 1] - times[s];
-        }
-        health_destroy(health);
-        meter_destroy(meter);
-        impulse_finder_destroy(impulses);
-        tones_destroy(tones);
-        pulses_destroy(pulses);
+        setup.channel = c + 1;
+        setup.gates = setup.finds_impulses = c == 0; /* as listen chooses when every channel does both */
+        if (ear_create(&setup, &stages.ears[c]))
+            return false;
     }
-    free(samples);
-    free(pascals);
+    if (strips_create(sound->rate_hz, false, &stages.strips) ||
+        blocks_create(1, sound->n_channels, sound->rate_hz, &blocks))
+        return false;
+    double start = cpu_s();
+    push_all(sound, blocks, &(struct block_sink){run_stages, &stages});
+    stages.spent_s[STAGE_BLOCKS] += cpu_s() - start;
+    for (int s = 0; s < STAGE_COUNT; s++)
+        out[s] = fmin(out[s], stages.spent_s[s]);
+    blocks_destroy(blocks);
+    strips_destroy(stages.strips);
+    for (uint32_t c = 0; c < sound->n_channels; c++)
+        ear_destroy(&stages.ears[c]);
+    return true;
 }
 
 struct chain {
@@ -204,16 +351,12 @@ static void take_block(void *context, const struct block *block)
     listen_push(chain->listen, block, &(struct event_sink){take_event, chain});
 }
 
-static void ignore_column(void *context, const struct column *column)
-{
-    (void)context;
-    (void)column;
-}
-
 /* The whole of lib: blocks, listen with its strips, watch. */
-static double whole_s(const struct sound *sound, double *out_watch_s)
+static double whole_s(const struct sound *sound, double *out_watch_s, double *out_mib)
 {
     struct chain chain = {0};
+    double before_mib = resident_mib();
+    n_calls = n_impulses = 0;
     struct blocks *blocks;
     struct listen_setup setup = {.stream = 1,
                                  .run = 1,
@@ -221,7 +364,7 @@ static double whole_s(const struct sound *sound, double *out_watch_s)
                                  .rate_hz = sound->rate_hz,
                                  .map = {.rate_hz = sound->rate_hz},
                                  .catalogue = &catalogue,
-                                 .columns = {ignore_column, NULL}};
+                                 .columns = {drop_column, NULL}};
     for (uint32_t c = 0; c < sound->n_channels; c++)
         setup.calibration[c] = sound->calibration;
     const struct watch_setup watch = {.permit = &permit,
@@ -236,52 +379,72 @@ static double whole_s(const struct sound *sound, double *out_watch_s)
         return NAN;
     const struct block_sink sink = {take_block, &chain};
     double start = cpu_s();
-    for (uint64_t at = 0; at < sound->n_frames; at += 4096) {
-        uint64_t n = sound->n_frames - at < 4096 ? sound->n_frames - at : 4096;
-        blocks_push(blocks, 0, sound->frames + at * sound->n_channels, (uint32_t)n, &sink);
-    }
+    push_all(sound, blocks, &sink);
     double spent = cpu_s() - start;
     *out_watch_s = chain.watch_s;
+    *out_mib = resident_mib() - before_mib;
     blocks_destroy(blocks);
     listen_destroy(chain.listen);
     watch_destroy(chain.watch);
     return spent;
 }
 
+struct costs {
+    double bare_s, whole_s, watch_s, stages_s[STAGE_COUNT], mib;
+};
+
+/* One more round of each; every figure keeps its least. */
+static bool measure(const struct sound *sound, struct costs *costs)
+{
+    double watch, mib, bare = bare_spectra_s(sound), whole = whole_s(sound, &watch, &mib);
+    if (isnan(whole) || !stages_s(sound, costs->stages_s))
+        return false;
+    costs->bare_s = fmin(costs->bare_s, bare);
+    costs->whole_s = fmin(costs->whole_s, whole);
+    costs->watch_s = fmin(costs->watch_s, watch);
+    costs->mib = fmax(costs->mib, mib);
+    return true;
+}
+
+static void print_costs(const struct sound *sound, const struct costs *costs)
+{
+    double seconds = (double)sound->n_frames / sound->rate_hz, sum = costs->watch_s;
+    double ns = 1e9 / ((double)sound->n_frames * sound->n_channels);
+    printf("{\"bench\": \"watch_cost\", \"rate_hz\": %.0f, \"channels\": %u, \"seconds\": %.1f, \"calls\": "
+           "%llu, \"impulses\": %llu,\n \"ns_per_sample\": {",
+           sound->rate_hz, sound->n_channels, seconds, (unsigned long long)n_calls,
+           (unsigned long long)n_impulses);
+    for (int s = 0; s < STAGE_COUNT; s++) {
+        sum += costs->stages_s[s];
+        printf("\"%s\": %.3f, ", stage_names[s], costs->stages_s[s] * ns);
+    }
+    printf("\"watch\": %.3f,\n  \"all\": %.3f, \"bare_spectra\": %.3f},\n", costs->watch_s * ns,
+           costs->whole_s * ns, costs->bare_s * ns);
+    printf(" \"ratio_to_bare_spectra\": %.2f, \"times_real_time\": %.1f, \"stages_over_all\": %.3f, "
+           "\"resident_mib\": %.1f}\n",
+           costs->whole_s / costs->bare_s, seconds / costs->whole_s, sum / costs->whole_s, costs->mib);
+}
+
 int main(int argc, char **argv)
 {
     struct sound sound = {.rate_hz = argc > 2 ? atof(argv[1]) : 192000,
                           .n_channels = argc > 2 ? (uint32_t)atoi(argv[2]) : 8};
-    double seconds = argc > 3 ? atof(argv[3]) : 20, stages[STAGE_COUNT] = {0}, watch_s = 0, sum = 0;
     struct problems problems = {0};
-    sound.n_frames = (uint64_t)(seconds * sound.rate_hz);
+    struct costs costs = {.bare_s = INFINITY, .whole_s = INFINITY, .watch_s = INFINITY};
+    for (int s = 0; s < STAGE_COUNT; s++)
+        costs.stages_s[s] = INFINITY;
+    float_mode_flush_to_zero();
+    sound.n_frames = (uint64_t)((argc > 3 ? atof(argv[3]) : 20) * sound.rate_hz);
     if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
         permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
         !render_busy(&sound)) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);
         return 3;
     }
-    double samples = (double)sound.n_frames * sound.n_channels;
-    double bare = bare_spectra_s(&sound), whole = whole_s(&sound, &watch_s);
-    stages_s(&sound, stages);
-    double bare_again = bare_spectra_s(&sound);
-    bare = bare < bare_again ? bare : bare_again;
-    struct rusage usage;
-    getrusage(RUSAGE_SELF, &usage);
-    printf("{\"bench\": \"watch_cost\", \"rate_hz\": %.0f, \"channels\": %u, \"seconds\": %.1f, \"calls\": "
-           "%llu, \"impulses\": %llu,\n",
-           sound.rate_hz, sound.n_channels, seconds, (unsigned long long)n_calls,
-           (unsigned long long)n_impulses);
-    printf(" \"ns_per_sample\": {");
-    for (int s = 0; s < STAGE_COUNT; s++) {
-        sum += stages[s];
-        printf("\"%s\": %.3f, ", stage_names[s], stages[s] / samples * 1e9);
-    }
-    sum += watch_s;
-    printf("\"watch\": %.3f, \"all\": %.3f, \"bare_spectra\": %.3f},\n", watch_s / samples * 1e9,
-           whole / samples * 1e9, bare / samples * 1e9);
-    printf(" \"ratio_to_bare_spectra\": %.2f, \"times_real_time\": %.1f, \"stages_over_all\": %.3f}\n",
-           whole / bare, seconds / whole, sum / whole);
+    for (int round = 0; round < ROUNDS; round++)
+        if (!measure(&sound, &costs))
+            return 3;
+    print_costs(&sound, &costs);
     free(sound.frames);
     return 0;
 }
