@@ -18,7 +18,8 @@ void spectrum_destroy(struct spectrum *spectrum);
 void spectrum_power(struct spectrum *spectrum, const float *frame, float *out_power);
 /* The window, [n], for those who need its shape. */
 const float *spectrum_get_window(const struct spectrum *spectrum);
-/* The unscaled bins of the last spectrum_power, real and imaginary parts in turn, [n + 2]; until the next. */
-const float *spectrum_get_bins(const struct spectrum *spectrum);
+/* The first `count` (1 .. n / 4 + 1) unscaled bins of the last spectrum_power, real and imaginary parts in
+ * turn, [2 * count]. */
+void spectrum_get_low_bins(const struct spectrum *spectrum, uint32_t count, float *out);
 
 #endif

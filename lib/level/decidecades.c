@@ -316,7 +316,7 @@ static void push_bank(struct decidecades *d, float sample)
 /* The frame's lowest bins as samples of the next rate, added to the half that the frame before left. */
 static const float *decimate_frame(struct stage *stage)
 {
-    memcpy(stage->kept, spectrum_get_bins(stage->spectrum), stage->keep * sizeof *stage->kept);
+    spectrum_get_low_bins(stage->spectrum, stage->keep / 2, stage->kept);
     stage->kept[stage->keep] = stage->kept[stage->keep + 1] = 0;
     fftwf_execute(stage->inverse);
     const uint32_t half = stage->keep / 2;
