@@ -13,6 +13,8 @@
 #define ROUND_DECIMALS_DEG 1         /* 0.1 degree */
 #define ROUND_DECIMALS_PROBABILITY 3 /* 0.001 */
 #define ROUND_DECIMALS_EVIDENCE 3    /* 0.001 of log-odds */
+#define ROUND_DECIMALS_KURTOSIS 2    /* 0.01 */
+#define ROUND_DECIMALS_PA_S 6        /* 1e-6 Pa s */
 #define ROUND_DECIMALS_SEA_STATE 1   /* 0.1 */
 #define ROUND_DECIMALS_NUMBER 0      /* animals are counted */
 #define ROUND_DECIMALS_POSITION 6    /* 1e-6 degree */

@@ -2,6 +2,7 @@
 #ifndef LEVEL_LEVEL_H
 #define LEVEL_LEVEL_H
 
+#include "level/moments.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -14,6 +15,10 @@ struct level {
     double seconds;                  /* sound in it: 1, or less where some was lost */
     double spl_db;                   /* dB re 1 uPa, from the time-domain sum */
     double peak_db;                  /* zero-to-peak, dB re 1 uPa */
+    double sel_db;                   /* of the sound in it, dB re 1 uPa2 s */
+    double fast_max_db, slow_max_db; /* greatest SPL under fast and slow time weighting, dB re 1 uPa */
+    struct moments moments;          /* of the samples, pascals, over 0 Hz to high_hz less the offset */
+    double high_hz;                  /* half the sampling rate */
     uint32_t n_bands;                /* bands that the rate carries, from n = LEVEL_FIRST_BAND up */
     double band_db[LEVEL_MAX_BANDS]; /* SPL of each decidecade, dB re 1 uPa; NAN where not measured */
     bool relative;                   /* channel uncalibrated: dB re full scale */

@@ -114,6 +114,11 @@ static void take_level(void *context, uint32_t channel, const struct found_level
     out->seconds = level->frames / listen->setup.rate_hz;
     out->spl_db = level->spl_db;
     out->peak_db = level->peak_db;
+    out->sel_db = level->spl_db + units_power_db(out->seconds);
+    out->fast_max_db = level->fast_max_db;
+    out->slow_max_db = level->slow_max_db;
+    out->moments = level->moments;
+    out->high_hz = listen->setup.rate_hz / 2;
     out->relative = level->relative;
     out->n_bands = level->n_bands;
     memcpy(out->band_db, level->band_db, sizeof out->band_db);

@@ -72,7 +72,7 @@ void body_bool(struct body *body, const char *key, bool value)
     text_append(body->out, value ? "true" : "false");
 }
 
-static void append_time(struct text *out, int64_t ns)
+void body_append_time(struct text *out, int64_t ns)
 {
     int64_t us = time_round_us(ns) / TIME_NS_PER_US;
     uint64_t size = us < 0 ? -(uint64_t)us : (uint64_t)us;
@@ -82,7 +82,36 @@ static void append_time(struct text *out, int64_t ns)
 void body_time(struct body *body, const char *key, int64_t ns)
 {
     body_key(body, key);
-    append_time(body->out, ns);
+    body_append_time(body->out, ns);
+}
+
+void body_object(struct body *body, const char *key, struct body *out)
+{
+    body_key(body, key);
+    text_append(body->out, "{");
+    *out = (struct body){.out = body->out};
+}
+
+void body_object_end(struct body *object)
+{
+    text_append(object->out, "}");
+}
+
+void body_decibels(struct body *body, const char *key, const double *levels_db, uint32_t n)
+{
+    body_key(body, key);
+    body_append_decibels(body->out, levels_db, n);
+}
+
+void body_append_decibels(struct text *out, const double *levels_db, uint32_t n)
+{
+    text_append(out, "[");
+    for (uint32_t i = 0; i < n; i++) {
+        if (i > 0)
+            text_append(out, ",");
+        text_json_number(out, round_decimals(levels_db[i], ROUND_DECIMALS_DB), ROUND_DECIMALS_DB);
+    }
+    text_append(out, "]");
 }
 
 void body_id(struct body *body, uint32_t run, uint32_t stream, const char *kind, uint64_t counter)
@@ -102,68 +131,4 @@ void body_causes(struct body *body, uint32_t n, const char causes[][FLOW_ID_SIZE
         text_json_string(body->out, causes[i]);
     }
     text_append(body->out, "]");
-}
-
-static void append_bands(struct text *out, const struct level *level)
-{
-    text_append(out, "[");
-    for (uint32_t b = 0; b < level->n_bands && b < LEVEL_MAX_BANDS; b++) {
-        if (b > 0)
-            text_append(out, ",");
-        text_json_number(out, round_decimals(level->band_db[b], ROUND_DECIMALS_DB), ROUND_DECIMALS_DB);
-    }
-    text_append(out, "]");
-}
-
-enum level_part { PART_BANDS, PART_PEAK, PART_SECONDS, PART_SPL, PART_START };
-
-static void append_part(struct text *out, const struct level *level, enum level_part part)
-{
-    switch (part) {
-    case PART_BANDS:
-        append_bands(out, level);
-        break;
-    case PART_PEAK:
-        text_json_number(out, round_decimals(level->peak_db, ROUND_DECIMALS_DB), ROUND_DECIMALS_DB);
-        break;
-    case PART_SECONDS:
-        text_json_number(out, round_decimals(level->seconds, ROUND_DECIMALS_S), ROUND_DECIMALS_S);
-        break;
-    case PART_SPL:
-        text_json_number(out, round_decimals(level->spl_db, ROUND_DECIMALS_DB), ROUND_DECIMALS_DB);
-        break;
-    case PART_START:
-        append_time(out, level->start_ns);
-        break;
-    }
-}
-
-static void put_part(struct body *body, const char *key, const struct level *levels, uint32_t n,
-                     enum level_part part)
-{
-    body_key(body, key);
-    text_append(body->out, "[");
-    for (uint32_t i = 0; i < n; i++) {
-        if (i > 0)
-            text_append(body->out, ",");
-        append_part(body->out, &levels[i], part);
-    }
-    text_append(body->out, "]");
-}
-
-enum status body_of_levels(uint32_t run, uint32_t stream, uint64_t counter, const struct level *levels,
-                           uint32_t n, struct text *out)
-{
-    struct body body;
-    body_begin(&body, out);
-    put_part(&body, "bands", levels, n, PART_BANDS);
-    body_integer(&body, "channel", levels[0].channel);
-    body_id(&body, run, stream, "level", counter);
-    put_part(&body, "peak_db", levels, n, PART_PEAK);
-    body_bool(&body, "relative", levels[0].relative);
-    put_part(&body, "seconds", levels, n, PART_SECONDS);
-    put_part(&body, "spl_db", levels, n, PART_SPL);
-    put_part(&body, "start_s", levels, n, PART_START);
-    body_integer(&body, "stream", stream);
-    return body_end(&body);
 }

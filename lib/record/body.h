@@ -38,9 +38,13 @@ void body_id(struct body *body, uint32_t run, uint32_t stream, const char *kind,
 /* An array of ids. */
 void body_causes(struct body *body, uint32_t n, const char causes[][FLOW_ID_SIZE]);
 
-/* The body of n level seconds of one channel, oldest first: every measure an array, so that a minute is one
- * entry. All levels have the channel, the bands and the mark `relative` of the first. */
-enum status body_of_levels(uint32_t run, uint32_t stream, uint64_t counter, const struct level *levels,
-                           uint32_t n, struct text *out);
+/* An object within the body: its members go through *out until body_object_end. */
+void body_object(struct body *body, const char *key, struct body *out);
+void body_object_end(struct body *object);
+/* An array of n levels in dB, null where not finite; as a member, or alone. */
+void body_decibels(struct body *body, const char *key, const double *levels_db, uint32_t n);
+void body_append_decibels(struct text *out, const double *levels_db, uint32_t n);
+/* Seconds with six decimals, alone. */
+void body_append_time(struct text *out, int64_t ns);
 
 #endif

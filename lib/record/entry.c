@@ -3,6 +3,7 @@
 #include "base/round.h"
 #include "base/time.h"
 #include "record/body.h"
+#include "record/level_body.h"
 #include "record/marks.h"
 #include <inttypes.h>
 #include <math.h>
@@ -121,7 +122,7 @@ static enum status event_body(const struct event *event, int64_t zero_unix_ns, s
     case EVENT_UNHEARD:
         return unheard_body(event, out);
     case EVENT_LEVEL:
-        return body_of_levels(event->run, event->stream, event->counter, &event->as.level, 1, out);
+        return level_body(event->run, event->stream, event->counter, &event->as.level, 1, NULL, out);
     case EVENT_IMPULSE:
         return impulse_body(event, out);
     case EVENT_CALL:

@@ -1,7 +1,7 @@
 /* Level seconds to one body a minute and channel. */
 #include "record/minute.h"
 #include "base/time.h"
-#include "record/body.h"
+#include "record/level_body.h"
 #include <stdlib.h>
 
 #define MINUTE_NS (60 * TIME_NS_PER_S)
@@ -12,6 +12,7 @@ struct channel {
     uint32_t stream, channel;
     uint32_t n;
     struct level seconds[MAX_SECONDS];
+    struct level_hour hour;
 };
 
 /* Entries of one stream so far; there are at most as many streams as channels. */
@@ -76,8 +77,10 @@ static enum status give(struct minutes *minutes, struct channel *channel, int64_
                                  .stream = channel->stream,
                                  .channel = channel->channel,
                                  .counter = next_count(minutes, channel->stream)};
-    enum status status = body_of_levels(minutes->run, channel->stream, minute.counter, channel->seconds,
-                                        channel->n, &minutes->text);
+    struct level_statistics hour;
+    level_hour_get(&channel->hour, &hour);
+    enum status status = level_body(minutes->run, channel->stream, minute.counter, channel->seconds,
+                                    channel->n, &hour, &minutes->text);
     channel->n = 0;
     if (status != STATUS_OK)
         return status;
@@ -103,7 +106,8 @@ static struct channel *find_channel(struct minutes *minutes, uint32_t stream, ui
         minutes->order[i] = minutes->order[i - 1];
     minutes->order[at] = minutes->n_channels;
     struct channel *channel = &minutes->channels[minutes->n_channels++];
-    *channel = (struct channel){.stream = stream, .channel = number};
+    channel->stream = stream;
+    channel->channel = number;
     return channel;
 }
 
@@ -138,6 +142,7 @@ static enum status take_level(struct minutes *minutes, const struct event *event
     if (channel->n > 0 && !follows(channel, level))
         status = give(minutes, channel, event->known_ns, sink);
     channel->seconds[channel->n++] = *level;
+    level_hour_take(&channel->hour, level);
     if (status == STATUS_OK && minute_of(end_of(level) + TIME_NS_PER_US) > minute_of(level->start_ns))
         status = give(minutes, channel, event->known_ns, sink);
     return status;

@@ -2,8 +2,10 @@
  *
  * A minute's body ends at the whole minute of watch time, where a second does not follow the one before it,
  * where the bands or the mark `relative` change, and at flush. Only the order and the times of what is taken
- * decide, so the same outcomes give the same bodies. Call order: create; take every outcome of the watch in
- * order; flush; destroy. Memory: about 26 kB a channel, all of it from create. */
+ * decide, so the same outcomes give the same bodies. It holds the minute's statistics and those of the hour
+ * of watch time that ends with it (since the run began: a restart begins an hour anew). Call order: create;
+ * take every outcome of the watch in order; flush; destroy. Memory: about 150 kB a channel, all of it from
+ * create. */
 #ifndef RECORD_MINUTE_H
 #define RECORD_MINUTE_H
 

@@ -49,6 +49,9 @@ static void round_level(struct level *level)
     to(&level->seconds, ROUND_DECIMALS_S);
     to(&level->spl_db, ROUND_DECIMALS_DB);
     to(&level->peak_db, ROUND_DECIMALS_DB);
+    to(&level->sel_db, ROUND_DECIMALS_DB);
+    to(&level->fast_max_db, ROUND_DECIMALS_DB);
+    to(&level->slow_max_db, ROUND_DECIMALS_DB);
     for (uint32_t b = 0; b < level->n_bands && b < LEVEL_MAX_BANDS; b++)
         to(&level->band_db[b], ROUND_DECIMALS_DB);
 }

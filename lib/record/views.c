@@ -14,6 +14,9 @@
 /* The i-th second of a minute's entry. */
 #define SECOND(name) ", json_extract(body, '$." name "[' || second.key || ']') AS " name
 
+/* A member of an object in the body, as OBJECT_MEMBER. */
+#define INNER(object, name) ", json_extract(body, '$." object "." name "') AS " object "_" name
+
 /* clang-format off */
 const struct schema_object views_schema[] = {
     {"table", "entry",
@@ -42,6 +45,12 @@ const struct schema_object views_schema[] = {
      "CREATE VIEW level AS SELECT seq, CAST(json_extract(body, '$.id') AS INTEGER) AS run, utc, "
      "json_extract(body, '$.id') AS id" COLUMN("stream") COLUMN("channel") ", second.value AS start_s"
      SECOND("seconds") SECOND("spl_db") SECOND("peak_db") COLUMN("relative") SECOND("bands")
+     SECOND("sel_db") SECOND("fast_max_db") SECOND("slow_max_db")
+     INNER("minute", "l05_db") INNER("minute", "l50_db") INNER("minute", "l95_db") INNER("minute", "mean_db")
+     INNER("minute", "sel_db") INNER("hour", "l05_db") INNER("hour", "l50_db") INNER("hour", "l95_db")
+     INNER("hour", "mean_db") INNER("hour", "seconds") INNER("research", "kurtosis")
+     INNER("research", "window_s") INNER("research", "low_hz") INNER("research", "high_hz")
+     INNER("research", "adjusted_sel_db")
      " FROM entry, json_each(body, '$.start_s') AS second WHERE kind = 'level'"},
     VIEW("exposure",
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criterion") COLUMN_GROUP COLUMN("n_impulses")

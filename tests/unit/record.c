@@ -4,6 +4,7 @@
 #include "base/random.h"
 #include "base/time.h"
 #include "record/entry.h"
+#include "record/level_body.h"
 #include "record/marks.h"
 #include "record/minute.h"
 #include "record/views.h"
@@ -434,7 +435,7 @@ static void foreign_bodies_are_refused(void **state)
 
 struct gathered {
     unsigned n;
-    char bodies[16][4096];
+    char bodies[16][12288];
     struct minute_body minutes[16];
 };
 
@@ -473,11 +474,66 @@ static size_t seconds_in(const char *body)
 {
     json_t *root = json_loads(body, 0, NULL);
     size_t n = json_array_size(json_object_get(root, "start_s"));
-    static const char *const arrays[] = {"bands", "peak_db", "seconds", "spl_db"};
-    for (size_t i = 0; i < 4; i++)
+    static const char *const arrays[] = {"bands",  "fast_max_db", "peak_db", "seconds",
+                                         "sel_db", "slow_max_db", "spl_db"};
+    for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         assert_int_equal(json_array_size(json_object_get(root, arrays[i])), n);
     json_decref(root);
     return n;
+}
+
+static void assert_number(const char *body, const char *object, const char *key, double wanted)
+{
+    json_t *root = json_loads(body, 0, NULL);
+    assert_near(json_number_value(json_object_get(json_object_get(root, object), key)), wanted, 1e-9);
+    json_decref(root);
+}
+
+/* An hour lets go of what began an hour or more before. 7,200 seconds that rise by 0.01 dB each: the last
+ * 3,600 are 136.00 to 171.99 dB. */
+static void an_hour_holds_its_last_seconds(void **state)
+{
+    (void)state;
+    struct level_hour *hour = calloc(1, sizeof *hour);
+    assert_non_null(hour);
+    struct level_statistics got;
+    level_hour_get(hour, &got);
+    assert_true(isnan(got.l50_db) && isnan(got.mean_db) && got.seconds == 0);
+    double energy = 0;
+    for (int i = 0; i < 7200; i++) {
+        struct level level = {.start_ns = time_from_s(i), .seconds = 1, .spl_db = 100 + i / 100.0};
+        level_hour_take(hour, &level);
+        energy += i >= 3600 ? pow(10, level.spl_db / 10) : 0;
+    }
+    level_hour_get(hour, &got);
+    assert_near(got.l05_db, 136 + 0.01 * 3599 * 0.95, 1e-6);
+    assert_near(got.l50_db, 136 + 0.01 * 3599 * 0.50, 1e-6);
+    assert_near(got.l95_db, 136 + 0.01 * 3599 * 0.05, 1e-6);
+    assert_near(got.mean_db, 10 * log10(energy / 3600), 1e-9);
+    assert_near(got.seconds, 3600, 0);
+    struct level late = {.start_ns = time_from_s(20000), .seconds = 0.5, .spl_db = 90};
+    level_hour_take(hour, &late);
+    level_hour_get(hour, &got);
+    assert_near(got.l50_db, 90, 0);
+    assert_near(got.seconds, 0.5, 0);
+    free(hour);
+}
+
+/* 60 s of a Gaussian with one pulse whose fourth power gives the whole a kurtosis of 41: sums by hand. */
+static void a_minute_says_its_kurtosis_as_research(void **state)
+{
+    (void)state;
+    struct level level = {.channel = 1, .seconds = 1, .spl_db = 150, .high_hz = 24000};
+    level.moments = (struct moments){.n = 48000, .sum2 = 48000 * 1000.0, .sum4 = 48000 * 41e6};
+    struct text body = {0};
+    assert_int_equal(level_body(1, 1, 1, &level, 1, NULL, &body), STATUS_OK);
+    assert_well_formed(body.data, "1.1.level.1");
+    assert_number(body.data, "research", "kurtosis", 41);
+    assert_number(body.data, "research", "window_s", 1);
+    assert_number(body.data, "research", "high_hz", 24000);
+    /* 150 + 4.02 lg(41 / 3) (Goley et al. 2011) */
+    assert_number(body.data, "research", "adjusted_sel_db", 154.57);
+    text_destroy(&body);
 }
 
 static void levels_become_minutes(void **state)
@@ -508,6 +564,16 @@ static void levels_become_minutes(void **state)
     }
     assert_int_equal(gathered->minutes[0].watch_ns, time_from_s(60.5));
     assert_non_null(strstr(gathered->bodies[0], "{\"bands\":[[null,90.00],[null,90.00],"));
+    /* SPL is 100 + start / 100: seconds 60.5 .. 119.5 of the minute, 30.5 .. 119.5 of the hour; rank (n -
+     * 1)(1 - N / 100), linear between (Hyndman and Fan 1996, number 7). */
+    assert_number(gathered->bodies[2], "minute", "l05_db", 101.17);
+    assert_number(gathered->bodies[2], "minute", "l50_db", 100.90);
+    assert_number(gathered->bodies[2], "minute", "l95_db", 100.63);
+    assert_number(gathered->bodies[2], "minute", "seconds", 60);
+    assert_number(gathered->bodies[2], "hour", "l05_db", 101.15);
+    assert_number(gathered->bodies[2], "hour", "l50_db", 100.75);
+    assert_number(gathered->bodies[2], "hour", "l95_db", 100.35);
+    assert_number(gathered->bodies[2], "hour", "seconds", 90);
     minutes_destroy(minutes);
     free(gathered);
 }
@@ -593,6 +659,8 @@ int main(void)
         cmocka_unit_test(marks_are_well_formed),
         cmocka_unit_test(foreign_bodies_are_refused),
         cmocka_unit_test(levels_become_minutes),
+        cmocka_unit_test(an_hour_holds_its_last_seconds),
+        cmocka_unit_test(a_minute_says_its_kurtosis_as_research),
         cmocka_unit_test(a_gap_and_silence_end_a_minute),
         cmocka_unit_test(hash_agrees_with_sha256sum),
         cmocka_unit_test(every_kind_has_a_view),

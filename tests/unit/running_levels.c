@@ -353,11 +353,17 @@ static void offset_unit_and_chunks_do_not_matter(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(a_sine_has_its_levels),     cmocka_unit_test(energies_add),
-        cmocka_unit_test(backgrounds_subtract),      cmocka_unit_test(levels_exceeded),
-        cmocka_unit_test(bursts_have_their_maxima),  cmocka_unit_test(levels_fall_at_their_rate),
-        cmocka_unit_test(kurtosis_of_known_signals), cmocka_unit_test(kurtosis_of_pulses),
-        cmocka_unit_test(goley_adjustment),          cmocka_unit_test(offset_unit_and_chunks_do_not_matter),
+        cmocka_unit_test(a_sine_has_its_levels),
+        cmocka_unit_test(energies_add),
+        cmocka_unit_test(backgrounds_subtract),
+        cmocka_unit_test(levels_exceeded),
+        cmocka_unit_test(one_blow_from_a_long_mean),
+        cmocka_unit_test(bursts_have_their_maxima),
+        cmocka_unit_test(levels_fall_at_their_rate),
+        cmocka_unit_test(kurtosis_of_known_signals),
+        cmocka_unit_test(kurtosis_of_pulses),
+        cmocka_unit_test(goley_adjustment),
+        cmocka_unit_test(offset_unit_and_chunks_do_not_matter),
     };
     return cmocka_run_group_tests_name("running levels", tests, NULL, NULL);
 }
