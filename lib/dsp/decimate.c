@@ -1,5 +1,6 @@
 /* A chain of FIR stages; see decimate.h. */
 #include "dsp/decimate.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdbool.h>
 #include <stdlib.h>
@@ -7,15 +8,15 @@
 
 #define MAX_STAGES 32
 #define LARGEST_PRIME 13
-#define LANES 8           /* partial sums of a dot product: a fixed order that the compiler can vectorise */
-#define PIECE 512         /* input samples a stage takes at once */
+#define TILE (2 * LANES)  /* outputs of a half-band stage, or partial sums of another's, made side by side */
+#define PIECE 2048        /* input samples a stage takes at once */
 #define ATTENUATION_DB 90 /* of each stage: leaves 10 dB for the sum of a chain's stages */
 #define PASS_BAND_END 0.4 /* of the output rate */
 static const double pi = 3.14159265358979323846;
 
 struct stage {
     uint32_t factor;
-    uint32_t n_taps; /* a multiple of LANES: the filter has zeros in front. Half-band: of one side, folded */
+    uint32_t n_taps; /* a multiple of TILE: the filter has zeros in front. Half-band: of one side, folded */
     uint32_t delay;  /* in samples of its input */
     uint32_t phase;  /* input samples until the next output */
     uint32_t n_held; /* in buffer */
@@ -70,7 +71,7 @@ static bool make_buffers(struct stage *stage, size_t n_buffer, size_t n_odd)
 static bool design_stage(struct stage *stage, double pass, double stop)
 {
     uint32_t half = half_length(pass, stop), n = 2 * half + 1;
-    stage->n_taps = (n + LANES - 1) / LANES * LANES;
+    stage->n_taps = (n + TILE - 1) / TILE * TILE;
     stage->delay = half;
     if (!make_buffers(stage, stage->n_taps + PIECE, 1))
         return false;
@@ -163,11 +164,13 @@ void decimator_reset(struct decimator *decimator)
 
 static float dot(const float *a, const float *b, uint32_t n)
 {
-    float lanes[LANES] = {0};
-    for (uint32_t i = 0; i < n; i += LANES)
-        for (uint32_t j = 0; j < LANES; j++)
-            lanes[j] += a[i + j] * b[i + j];
-    return ((lanes[0] + lanes[4]) + (lanes[1] + lanes[5])) + ((lanes[2] + lanes[6]) + (lanes[3] + lanes[7]));
+    lanes first = {0}, second = {0};
+    for (uint32_t i = 0; i < n; i += TILE) {
+        first += lanes_load(a + i) * lanes_load(b + i);
+        second += lanes_load(a + i + LANES) * lanes_load(b + i + LANES);
+    }
+    first += second;
+    return (first[0] + first[1]) + (first[2] + first[3]);
 }
 
 /* Output i of a half-band stage: even and odd point to the oldest samples that output 0 needs. The order of
@@ -176,17 +179,19 @@ static void run_half_band(const struct stage *stage, const float *even, const fl
                           float *out)
 {
     const uint32_t n_taps = stage->n_taps;
+    const lanes middle = {0.5F, 0.5F, 0.5F, 0.5F};
     uint32_t i = 0;
-    for (; i + LANES <= n; i += LANES) {
-        float sum[LANES];
-        for (uint32_t j = 0; j < LANES; j++)
-            sum[j] = 0.5F * odd[i + j];
-        for (uint32_t k = 0; k < n_taps; k++) {
-            const float *early = even + i + n_taps - 1 - k, *late = even + i + n_taps + k;
-            for (uint32_t j = 0; j < LANES; j++)
-                sum[j] += stage->taps[k] * (early[j] + late[j]);
+    for (; i + TILE <= n; i += TILE) {
+        lanes first = middle * lanes_load(odd + i), second = middle * lanes_load(odd + i + LANES);
+        const float *early = even + i + n_taps - 1, *late = even + i + n_taps;
+        for (uint32_t k = 0; k < n_taps; k++, early--, late++) {
+            const float t = stage->taps[k];
+            const lanes tap = {t, t, t, t};
+            first += tap * (lanes_load(early) + lanes_load(late));
+            second += tap * (lanes_load(early + LANES) + lanes_load(late + LANES));
         }
-        memcpy(out + i, sum, sizeof sum);
+        lanes_store(out + i, first);
+        lanes_store(out + i + LANES, second);
     }
     for (; i < n; i++) {
         float sum = 0.5F * odd[i];
@@ -196,14 +201,31 @@ static void run_half_band(const struct stage *stage, const float *even, const fl
     }
 }
 
+/* Every other of the n samples to a, the rest to b, beginning with a. */
+static void deal(const float *samples, uint32_t n, float *a, float *b)
+{
+    uint32_t i = 0;
+    for (; 2 * (i + LANES) <= n; i += LANES) {
+        const lanes x = lanes_load(samples + 2 * i), y = lanes_load(samples + 2 * i + LANES);
+        lanes_store(a + i, __builtin_shufflevector(x, y, 0, 2, 4, 6));
+        lanes_store(b + i, __builtin_shufflevector(x, y, 1, 3, 5, 7));
+    }
+    for (; 2 * i + 1 < n; i++) {
+        a[i] = samples[2 * i];
+        b[i] = samples[2 * i + 1];
+    }
+    if (2 * i < n)
+        a[i] = samples[2 * i];
+}
+
 static uint32_t push_half_band(struct stage *stage, const float *samples, uint32_t n, float *out)
 {
     const uint32_t n_even = (n + 1 - stage->phase) / 2, n_odd = n - n_even;
     float *even = stage->buffer + stage->n_held, *odd = stage->odd + stage->n_odd;
-    for (uint32_t i = 0; i < n_even; i++)
-        even[i] = samples[2 * i + stage->phase];
-    for (uint32_t i = 0; i < n_odd; i++)
-        odd[i] = samples[2 * i + 1 - stage->phase];
+    if (stage->phase == 0)
+        deal(samples, n, even, odd);
+    else
+        deal(samples, n, odd, even);
     run_half_band(stage, stage->buffer, stage->odd, n_even, out);
     stage->n_odd += n_odd - n_even;
     memmove(stage->buffer, stage->buffer + n_even, stage->n_held * sizeof *stage->buffer);
