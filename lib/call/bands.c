@@ -18,7 +18,8 @@ typedef float lanes __attribute__((vector_size(16)));
 
 struct group {
     lanes gain, a1[SECTIONS], a2[SECTIONS];
-    lanes s1[SECTIONS], s2[SECTIONS];
+    lanes y1[SECTIONS], y2[SECTIONS]; /* each section's last two outputs */
+    float x1, x2;                     /* the last two samples */
 };
 
 struct bands {
@@ -159,21 +160,20 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
 void bands_reset(struct bands *bands)
 {
     for (uint32_t g = 0; g < bands->n_groups; g++) {
-        memset(bands->groups[g].s1, 0, sizeof bands->groups[g].s1);
-        memset(bands->groups[g].s2, 0, sizeof bands->groups[g].s2);
+        struct group *group = &bands->groups[g];
+        memset(group->y1, 0, sizeof group->y1);
+        memset(group->y2, 0, sizeof group->y2);
+        group->x1 = group->x2 = 0;
     }
     memset(bands->power, 0,
            sizeof(float) * bands->n_groups * LANES * (bands->history_slots + bands->block_slots));
 }
 
-/* Transposed direct form II. s1 is written without y, so that the chain from frame to frame is one product
- * and one sum long. */
-static inline lanes section(lanes x, lanes a1, lanes a2, lanes *s1, lanes *s2)
+/* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
+ * next section needs of its inputs, and the chain from frame to frame is one product and one sum long. */
+static inline lanes section(lanes difference, lanes a1, lanes a2, lanes y1, lanes y2)
 {
-    lanes y = x + *s1;
-    *s1 = (*s2 - a1 * x) - a1 * *s1;
-    *s2 = -x - a2 * y;
-    return y;
+    return (difference - a2 * y2) - a1 * y1;
 }
 
 static void filter_group(struct bands *bands, struct group *group, const float *x, float *out)
@@ -184,12 +184,20 @@ static void filter_group(struct bands *bands, struct group *group, const float *
     for (uint32_t slot = 0; slot < bands->block_slots; slot++) {
         lanes sum = {0};
         for (uint32_t k = 0; k < bands->slot_frames; k++, x++) {
-            lanes v = {*x, *x, *x, *x};
-            v *= g.gain;
-            v = section(v, g.a1[0], g.a2[0], &g.s1[0], &g.s2[0]);
-            v = section(v, g.a1[1], g.a2[1], &g.s1[1], &g.s2[1]);
-            v = section(v, g.a1[2], g.a2[2], &g.s1[2], &g.s2[2]);
-            sum += v * v;
+            const float rise = *x - g.x2;
+            const lanes first =
+                section(g.gain * (lanes){rise, rise, rise, rise}, g.a1[0], g.a2[0], g.y1[0], g.y2[0]);
+            const lanes second = section(first - g.y2[0], g.a1[1], g.a2[1], g.y1[1], g.y2[1]);
+            const lanes third = section(second - g.y2[1], g.a1[2], g.a2[2], g.y1[2], g.y2[2]);
+            g.x2 = g.x1;
+            g.x1 = *x;
+            g.y2[0] = g.y1[0];
+            g.y1[0] = first;
+            g.y2[1] = g.y1[1];
+            g.y1[1] = second;
+            g.y2[2] = g.y1[2];
+            g.y1[2] = third;
+            sum += third * third;
         }
         for (uint32_t l = 0; l < LANES; l++)
             out[l * stride + slot] = sum[l] * scale;
