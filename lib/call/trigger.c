@@ -1,6 +1,8 @@
 /* The pulse finder of one class. */
 #include "call/trigger.h"
 #include "base/units.h"
+#include "call/noise_rate.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdbool.h>
 #include <stdlib.h>
@@ -32,7 +34,7 @@ struct trigger {
     double threshold;                   /* ratio of a window's power to the background */
     double guard_ratio;
     double step_up, step_down;
-    struct window_statistics statistics;
+    struct noise_table noise;
     double echo_frames;
     bool has_guard;
 
@@ -108,13 +110,13 @@ enum status trigger_create(const struct trigger_setup *setup, struct trigger **o
     trigger->guard_window = guard_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
     trigger->guard_after =
         trigger->guard_window > trigger->window ? (trigger->guard_window - trigger->window + 1) / 2 : 0;
-    struct window_statistics guard = {.freedom = 1};
-    enum status status =
-        bands_get_statistics(setup->bands, setup->band, trigger->window, &trigger->statistics);
+    struct window_statistics band = {.freedom = 1, .skewness = 1}, guard = band;
+    enum status status = bands_get_statistics(setup->bands, setup->band, trigger->window, &band);
     if (status == STATUS_OK && trigger->has_guard)
         status = bands_get_statistics(setup->bands, setup->guard, trigger->guard_window, &guard);
-    trigger->band = background_of(trigger->statistics.freedom);
+    trigger->band = background_of(band.freedom);
     trigger->guard = background_of(guard.freedom);
+    noise_table_fill(&band, shape->pulse_s, &trigger->noise);
     /* A step of 0.002 at 0.1 ms keeps the median within 0.1 dB and lets it follow 87 dB/s; longer windows
        step more, since there are fewer. */
     double step = fmin(0.05, 0.002 * fmax(1, sqrt(shape->pulse_s / 1e-4)));
@@ -162,13 +164,24 @@ static bool follow(const struct trigger *trigger, struct background *background,
     return above;
 }
 
+static double sum_slots(const float *power, uint32_t n)
+{
+    lanes first = {0}, second = {0};
+    uint32_t i = 0;
+    for (; i + 2 * LANES <= n; i += 2 * LANES) {
+        first += lanes_load(power + i);
+        second += lanes_load(power + i + LANES);
+    }
+    double sum = lanes_sum(first + second);
+    for (; i < n; i++)
+        sum += power[i];
+    return sum;
+}
+
 /* Mean power of the window that ends with slot `last`. */
 static double window_power(const float *power, int64_t last, uint32_t window)
 {
-    double sum = 0;
-    for (uint32_t k = 0; k < window; k++)
-        sum += power[last - (int64_t)k];
-    return sum / window;
+    return sum_slots(power + last + 1 - (int64_t)window, window) / window;
 }
 
 /* Once a window: every window counts once in the background. */
@@ -272,11 +285,8 @@ static double arrival_slot(const struct trigger *trigger, const float *band, int
 
 static double energy_until(const struct trigger *trigger, const float *band, int64_t slot)
 {
-    double sum = 0;
-    for (int64_t k = slot < 0 ? slot : 0; k < (slot < 0 ? 0 : slot); k++)
-        sum += band[k];
-    double frames = trigger->setup.slot_frames * trigger->setup.frames_per_frame;
-    return trigger->energy + (slot < 0 ? -sum : sum) * frames;
+    double sum = slot < 0 ? -sum_slots(band + slot, (uint32_t)-slot) : sum_slots(band, (uint32_t)slot);
+    return trigger->energy + sum * trigger->setup.slot_frames * trigger->setup.frames_per_frame;
 }
 
 static void complete(struct trigger *trigger, int64_t slot, const float *band, const float *guard,
@@ -346,18 +356,17 @@ static void step(struct trigger *trigger, int64_t slot, const float *band, const
 /* Window means of the block, and the greatest of them. */
 static float sum_windows(struct trigger *trigger, const float *band)
 {
-    uint32_t n = trigger->setup.block_slots;
-    float *sums = trigger->sums, scale = 1.0F / (float)trigger->window, greatest = 0;
-    memset(sums, 0, n * sizeof *sums);
-    for (uint32_t k = 0; k < trigger->window; k++) {
-        const float *late = band - k;
-        for (uint32_t i = 0; i < n; i++)
-            sums[i] += late[i];
+    const uint32_t n = trigger->setup.block_slots, window = trigger->window;
+    const float scale = 1.0F / (float)window;
+    float greatest = 0;
+    for (uint32_t i = 0; i + LANES <= n; i += LANES) {
+        lanes sum = lanes_load(band + i);
+        for (uint32_t k = 1; k < window; k++)
+            sum += lanes_load(band + (int64_t)i - k);
+        lanes_store(trigger->sums + i, sum * (lanes){scale, scale, scale, scale});
     }
-    for (uint32_t i = 0; i < n; i++) {
-        sums[i] *= scale;
-        greatest = sums[i] > greatest ? sums[i] : greatest;
-    }
+    for (uint32_t i = 0; i < n; i++)
+        greatest = trigger->sums[i] > greatest ? trigger->sums[i] : greatest;
     return greatest;
 }
 
@@ -406,7 +415,7 @@ double trigger_get_background(const struct trigger *trigger)
 
 double trigger_get_noise_rate(const struct trigger *trigger, double snr)
 {
-    return window_upcrossings(&trigger->statistics, snr) / trigger->setup.call_class->train.pulse_s;
+    return noise_table_get(&trigger->noise, snr);
 }
 
 void trigger_destroy(struct trigger *trigger)

@@ -1,0 +1,25 @@
+/* A table of how often noise gives a pulse. */
+#include "call/noise_rate.h"
+#include <math.h>
+
+#define LEAST_RATE 1e-13
+
+void noise_table_fill(const struct window_statistics *statistics, double pulse_s, struct noise_table *out)
+{
+    double highest = 1;
+    while (window_upcrossings(statistics, highest) / pulse_s > LEAST_RATE)
+        highest *= 1.2;
+    out->step = highest / (NOISE_RATE_POINTS - 1);
+    for (int i = 0; i < NOISE_RATE_POINTS; i++)
+        out->ln_rate[i] = log(window_upcrossings(statistics, i * out->step) / pulse_s);
+}
+
+double noise_table_get(const struct noise_table *table, double snr)
+{
+    double place = fmax(snr, 0) / table->step;
+    if (!(place < NOISE_RATE_POINTS - 1))
+        return 0;
+    int i = (int)place;
+    double part = place - i;
+    return exp(table->ln_rate[i] * (1 - part) + table->ln_rate[i + 1] * part);
+}
