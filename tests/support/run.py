@@ -27,7 +27,7 @@ def discover(build, filters):
     for folder in FOLDERS:
         for name in sorted(os.listdir(os.path.join("tests", folder))) if os.path.isdir("tests/" + folder) else []:
             path = os.path.join("tests", folder, name)
-            if name.endswith(".c"):
+            if name.endswith(".c") and folder != "browser":
                 command = [os.path.join(build, path[:-2])]
             elif name.endswith(".sh"):
                 command = ["sh", path]
