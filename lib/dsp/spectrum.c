@@ -36,7 +36,7 @@ static float *aligned_floats(size_t n)
 
 enum status spectrum_create(uint32_t n, enum window_shape shape, struct spectrum **out)
 {
-    if (n < 16 || n > 1u << 20 || n % 2 || shape > WINDOW_RECTANGLE)
+    if (n < 16 || n > 1u << 21 || n % 2 || shape > WINDOW_RECTANGLE)
         return STATUS_BAD_ARGUMENT;
     struct spectrum *spectrum = calloc(1, sizeof *spectrum);
     if (!spectrum)

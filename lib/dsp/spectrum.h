@@ -10,7 +10,7 @@ enum window_shape { WINDOW_HANN, WINDOW_SINE, WINDOW_RECTANGLE };
 
 struct spectrum;
 
-/* n is the frame length, even, 16 .. 1 << 20. Plans (not thread-safe: at start only). */
+/* n is the frame length, even, 16 .. 1 << 21. Plans (not thread-safe: at start only). */
 enum status spectrum_create(uint32_t n, enum window_shape shape, struct spectrum **out);
 void spectrum_destroy(struct spectrum *spectrum);
 /* Power of each of the n / 2 + 1 bins, scaled so that their sum is the windowed frame's mean square times

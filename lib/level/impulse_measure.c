@@ -1,6 +1,7 @@
 /* The measures of one impulse in a window of sound. */
 #include "level/impulse_measure.h"
 #include "base/units.h"
+#include "level/moments.h"
 #include <math.h>
 #include <stdint.h>
 
@@ -45,6 +46,39 @@ static bool is_clipped(const struct impulse_window *window)
     return false;
 }
 
+static double positive_impulse(const struct impulse_window *window)
+{
+    size_t peak = 0;
+    for (size_t i = 1; i < window->n; i++)
+        peak = window->pascals[i] > window->pascals[peak] ? i : peak;
+    double sum = 0;
+    for (size_t i = peak; i < window->n && window->pascals[i] > window->mean_pa; i++)
+        sum += window->pascals[i] - window->mean_pa;
+    for (size_t i = peak; i > 0 && window->pascals[i - 1] > window->mean_pa; i--)
+        sum += window->pascals[i - 1] - window->mean_pa;
+    return sum / window->rate_hz;
+}
+
+/* total: sum of the squares less the background's. */
+static void measure_shape(const struct impulse_window *window, double total, struct impulse_measures *m)
+{
+    double sums[4] = {0};
+    for (size_t i = 0; i < window->n; i++) {
+        double p = window->pascals[i] - window->mean_pa, square = p * p;
+        sums[0] += p;
+        sums[1] += square;
+        sums[2] += square * p;
+        sums[3] += square * square;
+    }
+    const double n = (double)window->n, b = window->background_pa2;
+    double fourths = sums[3] - 6 * b * total - 3 * b * b * n;
+    struct moments moments = moments_of_sums(n, sums, 0);
+    m->kurtosis = moments_kurtosis(&moments);
+    m->window_s = n / window->rate_hz;
+    m->effective_s = fourths > 0 ? total * total / fourths / window->rate_hz : NAN;
+    m->positive_impulse_pa_s = positive_impulse(window);
+}
+
 enum status impulse_measure(const struct impulse_window *window, struct impulse_measures *out)
 {
     double sum = 0, least = INFINITY, greatest = -INFINITY;
@@ -67,6 +101,7 @@ enum status impulse_measure(const struct impulse_window *window, struct impulse_
     m.rms90_db = units_spl_db(ENERGY_PART * m.exposure_pa2_s / m.t90_s);
     m.peak_db = units_peak_db(fmax(greatest, -least));
     m.peak_to_peak_db = units_peak_db(greatest - least);
+    measure_shape(window, total, &m);
     m.background_db = units_spl_db(window->background_pa2);
     m.weak = m.rms90_db - m.background_db < WEAK_DB;
     double largest = fmax(greatest + window->mean_pa, -(least + window->mean_pa));

@@ -1,6 +1,7 @@
 /* Finds and measures the impulses of one channel. Units of time inside: a slot is about 0.25 ms of samples, a
  * cell 4 slots, about 1 ms. */
 #include "level/impulses.h"
+#include "level/impulse_bands.h"
 #include "level/impulse_cells.h"
 #include "level/impulse_measure.h"
 #include "level/tone_part.h"
@@ -30,10 +31,12 @@
 #define FRONT_PART 0.4
 #define TONE_PART 0.65
 #define LEAST_DB 8.0
-#define KEPT_CELLS 1400u /* of samples kept: the longest window and some */
+#define QUIET_CELLS 256u /* before a window, from which its bands' background is learned */
+#define KEPT_CELLS 1664u /* of samples kept: the longest window, the quiet before it and some */
 
 struct finder_window {
     bool open;
+    bool follows;                  /* it begins where an overlapped one ends */
     uint64_t start, trigger, loud; /* cells: first, triggered, last one above the close threshold */
     double highest_short;          /* levels so far */
     double highest, lowest_since;  /* long level: highest, lowest since it */
@@ -48,6 +51,7 @@ struct impulse_finder {
     uint64_t start_frame;  /* of the last reset */
     uint64_t quiet_since;  /* cell from which the sound may be background */
     struct tone_part *tone_part;
+    struct impulse_bands *bands; /* NULL where nobody asks for bands */
     struct cells cells;
     struct cell_background background;
     struct finder_window window;
@@ -57,7 +61,8 @@ struct impulse_finder {
     struct impulse_rejections rejections;
 };
 
-enum status impulse_finder_create(double rate_hz, double full_scale_pa, struct impulse_finder **out)
+enum status impulse_finder_create(double rate_hz, double full_scale_pa, bool with_bands,
+                                  struct impulse_finder **out)
 {
     if (!(rate_hz >= 8000) || !(rate_hz <= 1000000) || !(full_scale_pa > 0))
         return STATUS_BAD_ARGUMENT;
@@ -72,7 +77,9 @@ enum status impulse_finder_create(double rate_hz, double full_scale_pa, struct i
     finder->ring = malloc(kept * sizeof *finder->ring);
     finder->window_samples = malloc(kept * sizeof *finder->window_samples);
     if (!finder->ring || !finder->window_samples ||
-        tone_part_create(finder->cells.slot_frames, &finder->tone_part)) {
+        tone_part_create(finder->cells.slot_frames, &finder->tone_part) ||
+        (with_bands &&
+         impulse_bands_create(rate_hz, (LONGEST + BEFORE + 1) * finder->cell_frames, &finder->bands))) {
         impulse_finder_destroy(finder);
         return STATUS_NO_MEMORY;
     }
@@ -86,6 +93,7 @@ void impulse_finder_destroy(struct impulse_finder *finder)
     if (!finder)
         return;
     tone_part_destroy(finder->tone_part);
+    impulse_bands_destroy(finder->bands);
     free(finder->ring);
     free(finder->window_samples);
     free(finder);
@@ -100,6 +108,8 @@ void impulse_finder_reset(struct impulse_finder *finder, uint64_t next_frame)
     memset(&finder->background, 0, sizeof finder->background);
     memset(&finder->window, 0, sizeof finder->window);
     finder->had_one = false;
+    if (finder->bands)
+        impulse_bands_reset(finder->bands);
 }
 
 /* Its 8 ms level rises by 6 dB or more within 16 ms, to within 5 dB of its highest. */
@@ -185,6 +195,22 @@ static const float *gather(const struct impulse_finder *finder, uint64_t start, 
     return finder->window_samples;
 }
 
+/* The quiet before the window, where there was enough of it, then the window itself: which is gathered again.
+ */
+static void measure_bands(struct impulse_finder *finder, uint64_t end, struct found_impulse *found)
+{
+    const struct finder_window *window = &finder->window;
+    const double mean = finder->background.mean;
+    if (!finder->bands)
+        return;
+    if (!window->follows && window->start >= finder->quiet_since + QUIET_CELLS)
+        impulse_bands_learn(finder->bands, gather(finder, window->start - QUIET_CELLS, window->start),
+                            QUIET_CELLS * finder->cell_frames, mean);
+    found->n_bands = impulse_bands_count(finder->bands);
+    impulse_bands_measure(finder->bands, gather(finder, window->start, end),
+                          (uint32_t)(end - window->start) * finder->cell_frames, mean, found->band_sel_db);
+}
+
 /* Closes the window before cell `end`, and gives what it holds if that is an impulse. */
 static void close_window(struct impulse_finder *finder, uint64_t end, bool overlapped,
                          const struct impulse_sink *sink)
@@ -221,16 +247,22 @@ static void close_window(struct impulse_finder *finder, uint64_t end, bool overl
                                   .rms90_db = measures.rms90_db,
                                   .t90_s = measures.t90_s,
                                   .background_db = measures.background_db,
+                                  .effective_s = measures.effective_s,
+                                  .kurtosis = measures.kurtosis,
+                                  .window_s = measures.window_s,
+                                  .positive_impulse_pa_s = measures.positive_impulse_pa_s,
                                   .clipped = measures.clipped,
                                   .overlapped = overlapped,
                                   .weak = measures.weak};
+    measure_bands(finder, end, &found);
     sink->take(sink->context, &found);
 }
 
-static void open_window(struct impulse_finder *finder, uint64_t start)
+static void open_window(struct impulse_finder *finder, uint64_t start, bool follows)
 {
     const struct cell *cell = cells_get(&finder->cells, finder->cells.next);
     finder->window = (struct finder_window){.open = true,
+                                            .follows = follows,
                                             .start = start,
                                             .trigger = finder->cells.next,
                                             .loud = finder->cells.next,
@@ -243,6 +275,8 @@ static void open_window(struct impulse_finder *finder, uint64_t start)
 static void learn_anew(struct impulse_finder *finder)
 {
     memset(&finder->background, 0, sizeof finder->background);
+    if (finder->bands)
+        impulse_bands_reset(finder->bands);
     for (uint32_t k = FIRST_CELLS; k > 0; k--)
         background_learn(&finder->background, cells_get(&finder->cells, finder->cells.next + 1 - k));
 }
@@ -261,7 +295,7 @@ static void follow_window(struct impulse_finder *finder, const struct cell *cell
     if (now - window->trigger >= NEXT && cell->long_level >= NEXT_RATIO * window->lowest_since &&
         cell->long_level >= WEAKER * window->highest) {
         close_window(finder, now - BACK, true, sink);
-        open_window(finder, now - BACK);
+        open_window(finder, now - BACK, true);
     } else if (now - window->loud >= HOLD) {
         close_window(finder, now + 1, false, sink);
         finder->quiet_since = now + 1;
@@ -279,7 +313,7 @@ static void take_cell(struct impulse_finder *finder, const float *x, const struc
     if (finder->window.open)
         follow_window(finder, cell, sink);
     else if (finder->background.n_cells >= FIRST_CELLS && background_passes(cell, finder->background.open))
-        open_window(finder, now > BEFORE ? now - BEFORE : 0);
+        open_window(finder, now > BEFORE ? now - BEFORE : 0, false);
     else if (now >= finder->quiet_since + DELAY)
         background_learn(&finder->background, cells_get(&finder->cells, now - DELAY));
 }

@@ -30,6 +30,7 @@
 #define LEVEL_IMPULSES_H
 
 #include "base/status.h"
+#include "level/level.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -39,7 +40,10 @@ struct found_impulse {
     uint64_t start_frame, end_frame; /* the window that was measured */
     uint64_t known_frame;            /* the last frame needed to give it */
     double sel_db, peak_db, peak_to_peak_db, rms90_db, t90_s, background_db;
+    double effective_s, kurtosis, window_s, positive_impulse_pa_s;
     bool clipped, overlapped, weak;
+    uint32_t n_bands; /* 0 where nobody asks for bands */
+    double band_sel_db[LEVEL_MAX_BANDS];
 };
 
 struct impulse_sink {
@@ -54,9 +58,11 @@ struct impulse_rejections {
 
 struct impulse_finder;
 
-/* rate_hz 8,000 to 1,000,000; full_scale_pa is the pressure at which the channel clips (INFINITY: not known).
- * STATUS_BAD_ARGUMENT, STATUS_NO_MEMORY; the caller owns *out. Holds 2 s of sound. */
-enum status impulse_finder_create(double rate_hz, double full_scale_pa, struct impulse_finder **out);
+/* rate_hz 8,000 to 1,000,000; full_scale_pa is the pressure at which the channel clips (INFINITY: not known);
+ * with_bands: the decidecades of each impulse too (level/impulse_bands.h), two FFTs an impulse and plans at
+ * start. STATUS_BAD_ARGUMENT, STATUS_NO_MEMORY; the caller owns *out. Holds 2 s of sound. */
+enum status impulse_finder_create(double rate_hz, double full_scale_pa, bool with_bands,
+                                  struct impulse_finder **out);
 void impulse_finder_destroy(struct impulse_finder *finder);
 /* Forgets the past and the background, which takes 0.6 s to be known again; next_frame is that of the next
  * push. */

@@ -12,7 +12,7 @@ static enum status create_parts(const struct ear_setup *setup, struct ear *ear)
         status = health_create(setup->rate_hz, &setup->calibration, &ear->health);
     if (status == STATUS_OK && setup->finds_impulses)
         status = impulse_finder_create(setup->rate_hz, calibration_pa_per_unit(&setup->calibration),
-                                       &ear->impulses);
+                                       setup->measures_impulses, &ear->impulses);
     if (status == STATUS_OK && setup->gates)
         status = gate_create(setup->rate_hz, GATE_MEMORY_S, &ear->gate);
     if (status == STATUS_OK && ear->listens)
@@ -29,6 +29,9 @@ enum status ear_create(const struct ear_setup *setup, struct ear *ear)
                         .relative = !setup->calibration.known,
                         .scale = (float)calibration_pa_per_unit(&setup->calibration),
                         .sink = setup->sink};
+    for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
+        ear->band_offset_db[b] = calibration_band_offset_db(&setup->calibration, LEVEL_FIRST_BAND + (int)b);
+    ear->has_offsets = setup->calibration.known && setup->calibration.n_points > 0;
     ear->samples = calloc(setup->max_frames, sizeof(float));
     ear->pascals = calloc(setup->max_frames, sizeof(float));
     enum status status = ear->samples && ear->pascals ? create_parts(setup, ear) : STATUS_NO_MEMORY;
@@ -58,12 +61,20 @@ static void take_fault(void *context, const struct found_fault *fault)
     ear->sink.fault(ear->sink.context, ear->channel, fault);
 }
 
-static void take_level(void *context, const struct found_level *level)
+static void correct_bands(const struct ear *ear, double *band_db, uint32_t n)
+{
+    for (uint32_t b = 0; b < n && ear->has_offsets; b++)
+        band_db[b] += ear->band_offset_db[b];
+}
+
+static void take_level(void *context, const struct found_level *found)
 {
     struct ear *ear = context;
     const struct fault_sink faults = {take_fault, ear};
-    ear->sink.level(ear->sink.context, ear->channel, level);
-    health_take_level(ear->health, level, &faults);
+    struct found_level level = *found;
+    correct_bands(ear, level.band_db, level.n_bands);
+    ear->sink.level(ear->sink.context, ear->channel, &level);
+    health_take_level(ear->health, &level, &faults);
 }
 
 static void take_masked(void *context, const struct gate_masked *masked)
@@ -72,9 +83,12 @@ static void take_masked(void *context, const struct gate_masked *masked)
     ear->sink.masked(ear->sink.context, ear->channel, masked);
 }
 
-static void take_impulse(void *context, const struct found_impulse *impulse)
+static void take_impulse(void *context, const struct found_impulse *found)
 {
     struct ear *ear = context;
+    struct found_impulse corrected = *found;
+    const struct found_impulse *impulse = &corrected;
+    correct_bands(ear, corrected.band_sel_db, corrected.n_bands);
     const struct gate_masked_sink masked = {take_masked, ear};
     if (ear->gate)
         gate_push_impulse(ear->gate, impulse->onset_frame, impulse->t90_s, &masked);

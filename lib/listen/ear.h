@@ -33,6 +33,8 @@ struct ear {
     float *samples; /* [block], full scale */
     float *pascals; /* [block] */
     uint64_t n_not_finite;
+    double band_offset_db[LEVEL_MAX_BANDS]; /* of a sensitivity that varies with frequency */
+    bool has_offsets;
     struct meter *meter;
     struct health *health;
     struct impulse_finder *impulses; /* NULL on channels whose impulses nobody asks for */
@@ -48,6 +50,7 @@ struct ear_setup {
     uint32_t max_frames; /* of a block */
     struct calibration calibration;
     bool finds_impulses;
+    bool measures_impulses;           /* their decidecades too */
     bool gates;                       /* says what the impulses that it finds cover */
     const struct call_class *classes; /* borrowed */
     uint32_t n_classes;

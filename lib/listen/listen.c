@@ -141,19 +141,30 @@ static void take_impulse(void *context, uint32_t channel, const struct found_imp
     if (channel != listen->impulse_channel)
         return;
     struct event *event = add_event(listen, EVENT_IMPULSE, found->known_frame);
-    event->as.impulse = (struct impulse){.channel = channel,
-                                         .time_ns = time_at(listen, found->onset_frame),
-                                         .sel_db = found->sel_db,
-                                         .peak_db = found->peak_db,
-                                         .peak_to_peak_db = found->peak_to_peak_db,
-                                         .rms90_db = found->rms90_db,
-                                         .t90_s = found->t90_s,
-                                         .background_db = found->background_db,
-                                         .relative = listen->ears[channel - 1].relative,
-                                         .clipped = found->clipped,
-                                         .overlapped = found->overlapped,
-                                         .weak = found->weak,
-                                         .whose = IMPULSE_UNKNOWN};
+    const struct ear *ear = &listen->ears[channel - 1];
+    struct impulse *impulse = &event->as.impulse;
+    *impulse = (struct impulse){.channel = channel,
+                                .time_ns = time_at(listen, found->onset_frame),
+                                .sel_db = found->sel_db,
+                                .peak_db = found->peak_db,
+                                .peak_to_peak_db = found->peak_to_peak_db,
+                                .rms90_db = found->rms90_db,
+                                .t90_s = found->t90_s,
+                                .background_db = found->background_db,
+                                .effective_s = found->effective_s,
+                                .kurtosis = found->kurtosis,
+                                .window_s = found->window_s,
+                                .positive_impulse_pa_s = ear->relative ? NAN : found->positive_impulse_pa_s,
+                                .n_bands = found->n_bands,
+                                .relative = ear->relative,
+                                .clipped = found->clipped,
+                                .overlapped = found->overlapped,
+                                .weak = found->weak,
+                                .whose = IMPULSE_UNKNOWN};
+    for (uint32_t b = 0; b < found->n_bands; b++)
+        impulse->band_sel_db[b] = found->band_sel_db[b];
+    if (!calibration_has_room(&listen->setup.calibration[channel - 1]))
+        impulse_refuse_levels(impulse);
 }
 
 /* What one channel's source covers it covers for the stream, whose listening channels are close together. */
@@ -251,6 +262,7 @@ static enum status create_ears(struct listen *listen)
     for (uint32_t i = 0; i < setup->n_channels; i++) {
         ear.channel = i + 1;
         ear.calibration = setup->calibration[i];
+        ear.measures_impulses = ear.channel == listen->impulse_channel;
         ear.gates = ear.channel == listen->gate_channel;
         ear.finds_impulses = ear.gates || ear.channel == listen->impulse_channel;
         enum status status = ear_create(&ear, &listen->ears[i]);

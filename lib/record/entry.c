@@ -33,13 +33,19 @@ static enum status impulse_body(const struct event *event, struct text *out)
     struct body body;
     body_begin(&body, out);
     body_number(&body, "background_db", impulse->background_db, ROUND_DECIMALS_DB);
+    body_decibels(&body, "bands", impulse->band_sel_db,
+                  impulse->n_bands < LEVEL_MAX_BANDS ? impulse->n_bands : LEVEL_MAX_BANDS);
     body_integer(&body, "channel", impulse->channel);
     body_bool(&body, "clipped", impulse->clipped);
+    body_number(&body, "effective_s", impulse->effective_s, ROUND_DECIMALS_S);
     body_id(&body, event->run, event->stream, "impulse", event->counter);
     body_text_or_null(&body, "job", impulse->job);
+    body_number(&body, "kurtosis", impulse->kurtosis, ROUND_DECIMALS_KURTOSIS);
     body_bool(&body, "overlapped", impulse->overlapped);
     body_number(&body, "peak_db", impulse->peak_db, ROUND_DECIMALS_DB);
     body_number(&body, "peak_to_peak_db", impulse->peak_to_peak_db, ROUND_DECIMALS_DB);
+    body_number(&body, "positive_impulse_pa_s", impulse->positive_impulse_pa_s, ROUND_DECIMALS_PA_S);
+    body_bool(&body, "refused", impulse->refused);
     body_bool(&body, "relative", impulse->relative);
     body_number(&body, "rms90_db", impulse->rms90_db, ROUND_DECIMALS_DB);
     body_number(&body, "sel_db", impulse->sel_db, ROUND_DECIMALS_DB);
@@ -48,6 +54,7 @@ static enum status impulse_body(const struct event *event, struct text *out)
     body_time(&body, "time_s", impulse->time_ns);
     body_bool(&body, "weak", impulse->weak);
     body_text(&body, "whose", impulse_whose_text(impulse->whose));
+    body_number(&body, "window_s", impulse->window_s, ROUND_DECIMALS_S);
     return body_end(&body);
 }
 

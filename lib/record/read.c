@@ -139,6 +139,22 @@ static void read_unheard(struct reading *reading, struct unheard *unheard)
     unheard->cause = (enum unheard_cause)read_word(reading, "cause", UNHEARD_TOO_QUIET + 1, cause_word);
 }
 
+static uint32_t read_bands(struct reading *reading, const char *key, double out[LEVEL_MAX_BANDS])
+{
+    json_t *array = member(reading, key, true);
+    const size_t n = json_array_size(array);
+    if (!json_is_array(array) || n > LEVEL_MAX_BANDS) {
+        reading->good = false;
+        return 0;
+    }
+    for (size_t b = 0; b < n; b++) {
+        json_t *value = json_array_get(array, b);
+        reading->good = reading->good && (json_is_null(value) || json_is_number(value));
+        out[b] = json_is_null(value) ? NAN : json_number_value(value);
+    }
+    return (uint32_t)n;
+}
+
 static void read_impulse(struct reading *reading, struct impulse *impulse)
 {
     impulse->channel = read_count(reading, "channel", true);
@@ -149,6 +165,12 @@ static void read_impulse(struct reading *reading, struct impulse *impulse)
     impulse->rms90_db = read_number(reading, "rms90_db", true, NAN);
     impulse->t90_s = read_number(reading, "t90_s", true, NAN);
     impulse->background_db = read_number(reading, "background_db", true, NAN);
+    impulse->effective_s = read_number(reading, "effective_s", true, NAN);
+    impulse->kurtosis = read_number(reading, "kurtosis", true, NAN);
+    impulse->window_s = read_number(reading, "window_s", true, NAN);
+    impulse->positive_impulse_pa_s = read_number(reading, "positive_impulse_pa_s", true, NAN);
+    impulse->n_bands = read_bands(reading, "bands", impulse->band_sel_db);
+    impulse->refused = read_bool(reading, "refused", true);
     impulse->relative = read_bool(reading, "relative", true);
     impulse->clipped = read_bool(reading, "clipped", true);
     impulse->overlapped = read_bool(reading, "overlapped", true);

@@ -65,6 +65,12 @@ static void round_impulse(struct impulse *impulse)
     to(&impulse->rms90_db, ROUND_DECIMALS_DB);
     to(&impulse->t90_s, ROUND_DECIMALS_S);
     to(&impulse->background_db, ROUND_DECIMALS_DB);
+    to(&impulse->effective_s, ROUND_DECIMALS_S);
+    to(&impulse->kurtosis, ROUND_DECIMALS_KURTOSIS);
+    to(&impulse->window_s, ROUND_DECIMALS_S);
+    to(&impulse->positive_impulse_pa_s, ROUND_DECIMALS_PA_S);
+    for (uint32_t b = 0; b < impulse->n_bands && b < LEVEL_MAX_BANDS; b++)
+        to(&impulse->band_sel_db[b], ROUND_DECIMALS_DB);
     clean(impulse->job);
 }
 

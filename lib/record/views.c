@@ -40,7 +40,15 @@ const struct schema_object views_schema[] = {
     VIEW("impulse",
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("time_s") COLUMN("sel_db") COLUMN("peak_db")
         COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db") COLUMN("whose")
-        COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak")),
+        COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak") COLUMN("effective_s")
+        COLUMN("kurtosis") COLUMN("window_s") COLUMN("positive_impulse_pa_s") COLUMN("bands")
+        COLUMN("refused")),
+    /* No kind: what the impulses of a job come to. */
+    {"view", "impulse_count",
+     "CREATE VIEW impulse_count AS SELECT stream, job, whose, COUNT(*) AS impulses, MIN(time_s) AS first_s, "
+     "MAX(time_s) AS last_s, CASE WHEN MAX(time_s) > MIN(time_s) THEN ROUND(60.0 * (COUNT(*) - 1) / "
+     "(MAX(time_s) - MIN(time_s)), 2) END AS per_minute, SUM(clipped) AS clipped, "
+     "SUM(overlapped) AS overlapped, SUM(weak) AS weak FROM impulse GROUP BY stream, job, whose"},
     {"view", "level",
      "CREATE VIEW level AS SELECT seq, CAST(json_extract(body, '$.id') AS INTEGER) AS run, utc, "
      "json_extract(body, '$.id') AS id" COLUMN("stream") COLUMN("channel") ", second.value AS start_s"
@@ -94,7 +102,8 @@ const size_t views_count = sizeof views_schema / sizeof views_schema[0];
 int views_has_kind(const char *kind)
 {
     for (size_t i = 0; i < views_count; i++)
-        if (strcmp(views_schema[i].type, "view") == 0 && strcmp(views_schema[i].name, kind) == 0)
+        if (strcmp(views_schema[i].type, "view") == 0 && strcmp(views_schema[i].name, kind) == 0 &&
+            strstr(views_schema[i].sql, " FROM entry")) /* others are made of views */
             return 1;
     return 0;
 }

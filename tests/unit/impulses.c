@@ -4,6 +4,8 @@
 
 #include "base/random.h"
 #include "dsp/filter.h"
+#include "level/decidecades.h"
+#include "level/impulse_bands.h"
 #include "level/impulse_measure.h"
 #include "level/impulses.h"
 #include <math.h>
@@ -61,10 +63,24 @@ static void check_measures(const char *how, enum wave wave, double sel, double p
     assert_near(t90_s * 1e3, wanted[wave][3], 0.01 * wanted[wave][3]);
 }
 
+/* (int p^2)^2 / int p^4: the rectangle's length, the exponential's tau, 13.3966 ms. */
+static const double wanted_effective_ms[3] = {10, 10, 13.3966};
+
+/* In 1 s, about the mean: (1 - 3d + 3d^2) / (d - d^2) with d = 0.01 (Bernoulli), 98.6937 (from the raw
+ * moments A^k tau / (k T)), 1 s / 13.3966 ms (the mean of the damped sine hardly counts). */
+static const double wanted_kurtosis[3] = {98.0101, 98.6937, 74.6460};
+
+/* A T, A tau, and of the first half wave A w / (a^2 + w^2) (1 + exp(-pi a / w)), a = 1 / tau. */
+static double positive_impulse(int wave)
+{
+    const double a = 1 / 0.02, w = 2 * M_PI * 200;
+    return wave < 2 ? 10 : 1000 * w / (a * a + w * w) * (1 + exp(-M_PI * a / w));
+}
+
 static void measures_are_the_closed_forms(void **state)
 {
     (void)state;
-    enum { RATE = 500000, N = RATE / 2 };
+    enum { RATE = 500000, N = RATE };
     static float x[N];
     for (int wave = 0; wave < 3; wave++) {
         for (int i = 0; i < N; i++) /* half a sample late: each sample is the middle of its time */
@@ -74,6 +90,10 @@ static void measures_are_the_closed_forms(void **state)
         assert_int_equal(impulse_measure(&window, &m), STATUS_OK);
         check_measures("measured", (enum wave)wave, m.sel_db, m.peak_db, m.rms90_db, m.t90_s);
         assert_false(m.clipped);
+        assert_near(m.effective_s * 1e3, wanted_effective_ms[wave], 0.005 * wanted_effective_ms[wave]);
+        assert_near(m.window_s, 1, 1e-9);
+        assert_near(m.kurtosis, wanted_kurtosis[wave], 0.001 * wanted_kurtosis[wave]);
+        assert_near(m.positive_impulse_pa_s, positive_impulse(wave), 0.002 * positive_impulse(wave));
         if (wave ==
             EXPONENTIAL) /* t5 = -tau / 2 ln 0.95 = 0.2565 ms after the onset; sample i is at i + 1/2 */
             assert_near((m.t5_frame + 0.5) / RATE - 0.1, 0.2565e-3, 1e-6);
@@ -84,6 +104,62 @@ static void measures_are_the_closed_forms(void **state)
     struct impulse_window window = {x, N, RATE, 0, 1, INFINITY};
     struct impulse_measures m;
     assert_int_equal(impulse_measure(&window, &m), STATUS_NOT_FOUND);
+}
+
+/* The energy spectrum of A exp(-t / tau) sin(w0 t) is 2 A^2 w0^2 / ((a^2 + w0^2 - w^2)^2 + (2 a w)^2) over f
+ * > 0 (Fourier transform of a damped sine, any table), and that of A exp(-t / tau) is 2 A^2 / (a^2 + w^2). */
+static double energy_density(enum wave wave, double f)
+{
+    const double a = wave == EXPONENTIAL ? 100 : 50, w0 = 2 * M_PI * 200, w = 2 * M_PI * f;
+    double d = a * a + w0 * w0 - w * w;
+    return wave == EXPONENTIAL ? 2e6 / (a * a + w * w) : 2e6 * w0 * w0 / (d * d + 4 * a * a * w * w);
+}
+
+static double band_exposure(enum wave wave, int n)
+{
+    const double low = decidecades_low_hz(n), high = decidecades_high_hz(n);
+    const int steps = 2000;
+    double sum = 0;
+    for (int i = 0; i < steps; i++)
+        sum += energy_density(wave, low + (i + 0.5) / steps * (high - low)) * (high - low) / steps;
+    return sum;
+}
+
+static void bands_are_the_closed_forms(void **state)
+{
+    (void)state;
+    static const double rates[] = {48000, 192000, 500000};
+    for (int r = 0; r < 3; r++)
+        for (int wave = EXPONENTIAL; wave <= DAMPED_SINE; wave++) {
+            const double rate = rates[r];
+            uint32_t n = (uint32_t)(0.4 * rate), most = (uint32_t)(1.3 * rate);
+            float *x = calloc(n, sizeof *x);
+            struct impulse_bands *bands;
+            double got[LEVEL_MAX_BANDS], worst = 0;
+            assert_int_equal(impulse_bands_create(rate, most, &bands), STATUS_OK);
+            impulse_bands_measure(bands, x, n, 0, got);
+            assert_true(isnan(got[20])); /* no background is known yet */
+            impulse_bands_learn(bands, x, n, 0);
+            for (uint32_t i = 0; i < n; i++)
+                x[i] = (float)wave_value((enum wave)wave, (i + 0.5) / rate - 0.05);
+            impulse_bands_measure(bands, x, n, 0, got);
+            double highest = -INFINITY;
+            for (uint32_t b = 0; b < impulse_bands_count(bands); b++)
+                highest = fmax(highest, got[b]);
+            /* Up to 1/25 of the rate: above, the samples of a wave with a step no longer have its spectrum
+             * (x / sin x, x = pi f / rate). */
+            for (int band = LEVEL_FIRST_BAND; decidecades_high_hz(band) < rate / 25; band++) {
+                double level = 10 * log10(band_exposure((enum wave)wave, band) / 1e-12);
+                if (level > highest - 50)
+                    worst = fmax(worst, fabs(got[band - LEVEL_FIRST_BAND] - level));
+            }
+            printf("# figure decidecade SEL of %s at %.0f Hz: within %.4f dB of the closed form, from "
+                   "10 Hz up\n",
+                   wave == EXPONENTIAL ? "an exponential" : "a damped sine", rate, worst);
+            assert_true(worst < 0.05);
+            impulse_bands_destroy(bands);
+            free(x);
+        }
 }
 
 /* ---- the finder */
@@ -108,7 +184,7 @@ static struct sound make_sound(double rate, double seconds, double noise_pa, uin
 static struct impulse_finder *finder_of(double rate)
 {
     struct impulse_finder *finder;
-    assert_int_equal(impulse_finder_create(rate, FULL_SCALE_PA, &finder), STATUS_OK);
+    assert_int_equal(impulse_finder_create(rate, FULL_SCALE_PA, true, &finder), STATUS_OK);
     return finder;
 }
 
@@ -147,6 +223,17 @@ static void found_impulses_have_the_closed_forms(void **state)
             check_measures(how, (enum wave)wave, f->sel_db, f->peak_db, f->rms90_db, f->t90_s);
             assert_near(f->background_db, 20 * log10(0.5e6), 0.2);
             assert_false(f->clipped || f->overlapped || f->weak);
+            assert_near(f->effective_s * 1e3, wanted_effective_ms[wave], 0.02 * wanted_effective_ms[wave]);
+            assert_near(f->positive_impulse_pa_s, positive_impulse(wave), 0.02 * positive_impulse(wave));
+            /* The window's kurtosis is its length over the effective duration. */
+            assert_near(f->kurtosis, f->window_s / f->effective_s, 0.08 * f->kurtosis);
+            for (int band = -13; band <= 3 && r > 0; band++) { /* 50 Hz to 2 kHz */
+                double level =
+                           wave == RECTANGLE ? NAN : 10 * log10(band_exposure((enum wave)wave, band) / 1e-12),
+                       got = f->band_sel_db[band - LEVEL_FIRST_BAND];
+                if (!isnan(level) && level > f->sel_db - 30)
+                    assert_near(got, level, 0.05);
+            }
             free(sound.x);
         }
 }
@@ -408,8 +495,8 @@ static void chunks_do_not_matter(void **state)
     assert_near(found.impulse[0].onset_frame, first.impulse[0].onset_frame + 1e6, 1e-6);
     impulse_finder_destroy(finder);
     finder = NULL;
-    assert_int_equal(impulse_finder_create(1000, 1, &finder), STATUS_BAD_ARGUMENT);
-    assert_int_equal(impulse_finder_create(48000, 0, &finder), STATUS_BAD_ARGUMENT);
+    assert_int_equal(impulse_finder_create(1000, 1, false, &finder), STATUS_BAD_ARGUMENT);
+    assert_int_equal(impulse_finder_create(48000, 0, false, &finder), STATUS_BAD_ARGUMENT);
     assert_null(finder);
     impulse_finder_destroy(NULL);
     free(sound.x);
@@ -419,6 +506,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(measures_are_the_closed_forms),
+        cmocka_unit_test(bands_are_the_closed_forms),
         cmocka_unit_test(found_impulses_have_the_closed_forms),
         cmocka_unit_test(blows_in_noise_are_found),
         cmocka_unit_test(noise_holds_no_impulse),

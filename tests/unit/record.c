@@ -77,11 +77,19 @@ static void random_impulse(struct random *random, struct impulse *impulse)
                                 .rms90_db = random_between(random, 100, 230),
                                 .t90_s = random_between(random, 0, 1),
                                 .background_db = maybe(random, 60, 130),
+                                .effective_s = maybe(random, 0, 1),
+                                .kurtosis = maybe(random, 1, 300),
+                                .window_s = random_between(random, 0, 1.3),
+                                .positive_impulse_pa_s = maybe(random, 0, 2000),
+                                .n_bands = (uint32_t)(random_bits(random) % (LEVEL_MAX_BANDS + 1)),
+                                .refused = random_bits(random) % 2,
                                 .relative = random_bits(random) % 2,
                                 .clipped = random_bits(random) % 2,
                                 .overlapped = random_bits(random) % 2,
                                 .weak = random_bits(random) % 2,
                                 .whose = (enum impulse_whose)(random_bits(random) % 3)};
+    for (uint32_t b = 0; b < impulse->n_bands; b++)
+        impulse->band_sel_db[b] = maybe(random, -20, 220);
     random_text(random, impulse->job, sizeof impulse->job);
 }
 
@@ -170,6 +178,14 @@ static void assert_same_impulse(const struct impulse *a, const struct impulse *b
     SAME_NUMBER(rms90_db);
     SAME_NUMBER(t90_s);
     SAME_NUMBER(background_db);
+    SAME_NUMBER(effective_s);
+    SAME_NUMBER(kurtosis);
+    SAME_NUMBER(window_s);
+    SAME_NUMBER(positive_impulse_pa_s);
+    SAME(n_bands);
+    for (uint32_t i = 0; i < a->n_bands; i++)
+        SAME_NUMBER(band_sel_db[i]);
+    SAME(refused);
     SAME(relative);
     SAME(clipped);
     SAME(overlapped);
@@ -648,6 +664,7 @@ static void every_kind_has_a_view(void **state)
         assert_true(views_has_kind(kinds[i]));
     assert_false(views_has_kind("entry"));
     assert_false(views_has_kind("entry_id"));
+    assert_false(views_has_kind("impulse_count"));
 }
 
 int main(void)
