@@ -33,7 +33,7 @@ struct trigger {
     uint32_t guard_window, guard_after; /* slots in all, and after the peak */
     double threshold;                   /* ratio of a window's power to the background */
     double guard_ratio;
-    double step_up, step_down;
+    double steps[2]; /* of the medians: down, up */
     struct noise_table noise;
     double echo_frames;
     bool has_guard;
@@ -120,8 +120,8 @@ enum status trigger_create(const struct trigger_setup *setup, struct trigger **o
     /* A step of 0.002 at 0.1 ms keeps the median within 0.1 dB and lets it follow 87 dB/s; longer windows
        step more, since there are fewer. */
     double step = fmin(0.05, 0.002 * fmax(1, sqrt(shape->pulse_s / 1e-4)));
-    trigger->step_up = 1 + step;
-    trigger->step_down = 1 / (1 + step);
+    trigger->steps[false] = 1 / (1 + step);
+    trigger->steps[true] = 1 + step;
     trigger->echo_frames = trigger_get_echo(setup->call_class) * setup->rate_hz * setup->frames_per_frame;
     trigger->sums = calloc(setup->block_slots, sizeof *trigger->sums);
     if (status != STATUS_OK || !trigger->sums) {
@@ -155,12 +155,12 @@ static void settle(struct background *background, float *windows)
     background->mean_pa2 = fmax(FLOOR_PA2, windows[SETTLE_WINDOWS / 2] / background->median_ratio);
 }
 
-/* Gives the side of the median on which the window lies. */
+/* Gives the side of the median on which the window lies: either is as likely, so no branch hangs on it. */
 static bool follow(const struct trigger *trigger, struct background *background, double window_pa2)
 {
     bool above = window_pa2 > background->mean_pa2 * background->median_ratio;
-    background->mean_pa2 =
-        fmax(FLOOR_PA2, background->mean_pa2 * (above ? trigger->step_up : trigger->step_down));
+    double mean_pa2 = background->mean_pa2 * trigger->steps[above];
+    background->mean_pa2 = mean_pa2 > FLOOR_PA2 ? mean_pa2 : FLOOR_PA2;
     return above;
 }
 
@@ -206,7 +206,7 @@ static void learn(struct trigger *trigger, int64_t slot, const float *band, cons
     bool above = follow(trigger, &trigger->band, trigger->sums[slot]);
     if (trigger->has_guard)
         follow(trigger, &trigger->guard, guard_power);
-    trigger->run = above == trigger->run_above ? trigger->run + 1 : 1;
+    trigger->run = trigger->run * (above == trigger->run_above) + 1;
     trigger->run_above = above;
     if (trigger->run >= RUN) {
         trigger->state = SETTLING;
@@ -358,16 +358,17 @@ static float sum_windows(struct trigger *trigger, const float *band)
 {
     const uint32_t n = trigger->setup.block_slots, window = trigger->window;
     const float scale = 1.0F / (float)window;
-    float greatest = 0;
+    lanes greatest = {0};
     for (uint32_t i = 0; i + LANES <= n; i += LANES) {
         lanes sum = lanes_load(band + i);
         for (uint32_t k = 1; k < window; k++)
             sum += lanes_load(band + (int64_t)i - k);
-        lanes_store(trigger->sums + i, sum * (lanes){scale, scale, scale, scale});
+        sum *= (lanes){scale, scale, scale, scale};
+        greatest = lanes_greatest(sum, greatest);
+        lanes_store(trigger->sums + i, sum);
     }
-    for (uint32_t i = 0; i < n; i++)
-        greatest = trigger->sums[i] > greatest ? trigger->sums[i] : greatest;
-    return greatest;
+    greatest = lanes_greatest(greatest, __builtin_shufflevector(greatest, greatest, 2, 3, 0, 1));
+    return greatest[0] > greatest[1] ? greatest[0] : greatest[1];
 }
 
 void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64_t *rejections)
