@@ -1,5 +1,6 @@
 /* One channel's ear; see ear.h. */
 #include "listen/ear.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -101,17 +102,32 @@ static void take_call(void *context, const struct found_call *call)
     ear->sink.call(ear->sink.context, ear->channel, call);
 }
 
+static bool pick_one(struct ear *ear, float sample, uint32_t i)
+{
+    ear->samples[i] = sample;
+    ear->pascals[i] = isfinite(sample) ? sample * ear->scale : 0.0F;
+    return isfinite(sample);
+}
+
 uint32_t ear_pick(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
 {
-    uint32_t bad = 0;
     const float *from = frames + (ear->channel - 1);
-    for (uint32_t i = 0; i < n; i++, from += n_channels) {
-        float sample = *from;
-        bad += isfinite(sample) ? 0 : 1;
-        ear->samples[i] = sample;
-        ear->pascals[i] = isfinite(sample) ? sample * ear->scale : 0.0F;
+    const lanes scale = {ear->scale, ear->scale, ear->scale, ear->scale};
+    lane_mask finite_count = {0};
+    uint32_t i = 0, n_finite = 0;
+    for (; i + LANES <= n; i += LANES, from += (size_t)LANES * n_channels) {
+        const lanes x = {from[0], from[n_channels], from[2 * (size_t)n_channels],
+                         from[3 * (size_t)n_channels]};
+        const lane_mask finite = x - x == (lanes){0}; /* infinity less itself is no number */
+        lanes_store(ear->samples + i, x);
+        lanes_store(ear->pascals + i, (lanes)((lane_mask)(x * scale) & finite));
+        finite_count -= finite;
     }
-    return bad;
+    for (uint32_t lane = 0; lane < LANES; lane++)
+        n_finite += (uint32_t)finite_count[lane];
+    for (; i < n; i++, from += n_channels)
+        n_finite += pick_one(ear, *from, i);
+    return n - n_finite;
 }
 
 bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_channels)
