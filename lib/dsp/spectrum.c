@@ -99,11 +99,16 @@ static void take_apart(const struct spectrum *spectrum, uint32_t k, float low[2]
     high[1] = even_im - turned_im;
 }
 
-/* The same of bins k .. k + 3, squared and scaled. */
-static void square_four(const struct spectrum *spectrum, uint32_t k, lanes scale, float *power)
+/* Four bins side by side. */
+struct four_bins {
+    lanes re, im;
+};
+
+/* The same of bins k .. k + 3, those of `high` the last first. */
+static void take_four_apart(const struct spectrum *spectrum, uint32_t k, struct four_bins *low,
+                            struct four_bins *high)
 {
-    const uint32_t m = spectrum->n / 2;
-    const float *a = spectrum->halves + 2 * k, *b = spectrum->halves + 2 * (m - k - 3);
+    const float *a = spectrum->halves + 2 * k, *b = spectrum->halves + spectrum->n - 2 * (k + 3);
     const lanes a0 = lanes_load(a), a1 = lanes_load(a + LANES), b0 = lanes_load(b),
                 b1 = lanes_load(b + LANES);
     const lanes a_re = __builtin_shufflevector(a0, a1, 0, 2, 4, 6);
@@ -114,11 +119,8 @@ static void square_four(const struct spectrum *spectrum, uint32_t k, lanes scale
     const lanes even_re = a_re + b_re, even_im = a_im - b_im, odd_re = a_re - b_re, odd_im = a_im + b_im;
     const lanes turned_re = turn_re * odd_re - turn_im * odd_im;
     const lanes turned_im = turn_re * odd_im + turn_im * odd_re;
-    const lanes low_re = even_re + turned_re, low_im = even_im + turned_im;
-    const lanes high_re = even_re - turned_re, high_im = even_im - turned_im;
-    const lanes high = (high_re * high_re + high_im * high_im) * scale;
-    lanes_store(power + k, (low_re * low_re + low_im * low_im) * scale);
-    lanes_store(power + m - k - 3, __builtin_shufflevector(high, high, 3, 2, 1, 0));
+    *low = (struct four_bins){even_re + turned_re, even_im + turned_im};
+    *high = (struct four_bins){even_re - turned_re, even_im - turned_im};
 }
 
 static void square_bins(const struct spectrum *spectrum, float *power)
@@ -129,8 +131,13 @@ static void square_bins(const struct spectrum *spectrum, float *power)
     power[0] = (first[0] + first[1]) * (first[0] + first[1]) * spectrum->scale / 2;
     power[m] = (first[0] - first[1]) * (first[0] - first[1]) * spectrum->scale / 2;
     uint32_t k = 1;
-    for (; 2 * (k + 3) < m; k += LANES)
-        square_four(spectrum, k, (lanes){scale, scale, scale, scale}, power);
+    for (; 2 * (k + 3) < m; k += LANES) {
+        struct four_bins low, high;
+        take_four_apart(spectrum, k, &low, &high);
+        const lanes mirrored = (high.re * high.re + high.im * high.im) * scale;
+        lanes_store(power + k, (low.re * low.re + low.im * low.im) * scale);
+        lanes_store(power + m - k - 3, __builtin_shufflevector(mirrored, mirrored, 3, 2, 1, 0));
+    }
     for (; 2 * k <= m; k++) {
         float low[2], high[2];
         take_apart(spectrum, k, low, high);
@@ -158,7 +165,16 @@ const float *spectrum_get_window(const struct spectrum *spectrum)
 
 void spectrum_get_low_bins(const struct spectrum *spectrum, uint32_t count, float *out)
 {
-    for (uint32_t k = 1; k < count; k++) {
+    uint32_t k = 1;
+    for (; k + LANES <= count; k += LANES) {
+        struct four_bins low, high;
+        take_four_apart(spectrum, k, &low, &high);
+        low.re *= 0.5F;
+        low.im *= 0.5F;
+        lanes_store(out + 2 * k, __builtin_shufflevector(low.re, low.im, 0, 4, 1, 5));
+        lanes_store(out + 2 * k + LANES, __builtin_shufflevector(low.re, low.im, 2, 6, 3, 7));
+    }
+    for (; k < count; k++) {
         float high[2];
         take_apart(spectrum, k, out + 2 * k, high);
         out[2 * k] /= 2;
