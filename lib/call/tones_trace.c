@@ -146,12 +146,21 @@ void tracer_destroy(struct tracer *tracer)
  * whose crest is 1.25 times the level that is taken here (mean size of the samples, as of Gaussian noise). */
 static void limit_transients(const float *in, float *out, uint32_t n)
 {
-    double sum = 0;
-    for (uint32_t i = 0; i < n; i++)
+    const four_masks sign = {INT32_MIN, INT32_MIN, INT32_MIN, INT32_MIN};
+    four sizes = all(0);
+    uint32_t i = 0;
+    for (; i + TILE <= n; i += TILE)
+        sizes += (four)((four_masks)load(in + i) & ~sign);
+    double sum = (double)sizes[0] + sizes[1] + ((double)sizes[2] + sizes[3]);
+    for (; i < n; i++)
         sum += fabsf(in[i]);
-    float scale = (float)(1 / (TRANSIENT_LIMIT * 1.2533 * sum / n + 1e-30));
-    for (uint32_t i = 0; i < n; i++) {
-        float ratio = in[i] * scale, square = ratio * ratio;
+    const float scale = (float)(1 / (TRANSIENT_LIMIT * 1.2533 * sum / n + 1e-30));
+    for (i = 0; i + TILE <= n; i += TILE) {
+        const four x = load(in + i), ratio = x * scale, square = ratio * ratio;
+        store(out + i, x / (1 + square * square * square));
+    }
+    for (; i < n; i++) {
+        const float ratio = in[i] * scale, square = ratio * ratio;
         out[i] = in[i] / (1 + square * square * square);
     }
 }
