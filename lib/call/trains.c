@@ -36,6 +36,14 @@ enum status trains_create(const struct call_class *call_class, double rate_hz, s
         trains->ln_m[m] = log(m);
         trains->ln_steps[m] = log(DETECTED) + (m - 1) * log(1 - DETECTED);
     }
+    /* Where the densities of m and m + 1 steps, both with the wide spread, are equal; never below 0.4, which
+       is far below ln 2 for every jitter. */
+    for (int m = 1; m < MAX_STEP; m++) {
+        double apart = trains->ln_m[m + 1] - trains->ln_m[m], spread = trains->deviation[WIDE];
+        double middle = (trains->ln_m[m + 1] + trains->ln_m[m]) / 2;
+        trains->ln_limit[m] =
+            fmax(0.4, middle + spread * spread * (trains->ln_steps[m] - trains->ln_steps[m + 1]) / apart);
+    }
     trains->ln_range = log(log(shape->max_interval_s / shape->min_interval_s));
     trains_reset(trains);
     *out = trains;

@@ -40,18 +40,10 @@ static double ln_density(const struct trains *trains, int spread, double d)
 /* How many intervals an interval so much longer (ln) than the one before most likely is. */
 static uint32_t likeliest_steps(const struct trains *trains, double ratio)
 {
-    if (ratio < 0.4) /* far below ln 2 for every jitter */
-        return 1;
-    uint32_t best = 1;
-    double most = -INFINITY;
-    for (uint32_t m = 1; m <= MAX_STEP; m++) {
-        double ln = ln_density(trains, WIDE, ratio - trains->ln_m[m]) + trains->ln_steps[m];
-        if (ln > most) {
-            most = ln;
-            best = m;
-        }
-    }
-    return best;
+    uint32_t m = 1;
+    while (m < MAX_STEP && ratio > trains->ln_limit[m])
+        m++;
+    return m;
 }
 
 /* A chain of two pulses. */

@@ -67,6 +67,7 @@ struct trains {
     double ln_peak[2], deviation[2]; /* of ln(interval ratio): a quarter of max_jitter, and max_jitter */
     double ln_steps[MAX_STEP + 1];   /* ln p_d (1 - p_d)^(m - 1) */
     double ln_m[MAX_STEP + 1];
+    double ln_limit[MAX_STEP]; /* ln of an interval's ratio from which m + 1 steps are likelier than m */
     double ln_range;           /* ln of ln(max / min interval) */
     double rate_above[LEVELS]; /* running, of pulses at each level or more, a second */
     uint64_t n_pulses;         /* taken */

@@ -345,7 +345,7 @@ static void step(struct trigger *trigger, int64_t slot, const float *band, const
             trigger->low_power = power;
         }
     } else if (trigger->state == TAIL) {
-        trigger->low_power = fmin(trigger->low_power, power);
+        trigger->low_power = power < trigger->low_power ? power : trigger->low_power;
         if (power > RISE * trigger->low_power && power > limit)
             open_at(trigger, slot);
         else if (power < limit)
@@ -359,13 +359,19 @@ static float sum_windows(struct trigger *trigger, const float *band)
     const uint32_t n = trigger->setup.block_slots, window = trigger->window;
     const float scale = 1.0F / (float)window;
     lanes greatest = {0};
-    for (uint32_t i = 0; i + LANES <= n; i += LANES) {
-        lanes sum = lanes_load(band + i);
-        for (uint32_t k = 1; k < window; k++)
-            sum += lanes_load(band + (int64_t)i - k);
-        sum *= (lanes){scale, scale, scale, scale};
-        greatest = lanes_greatest(sum, greatest);
-        lanes_store(trigger->sums + i, sum);
+    for (uint32_t i = 0; i < n; i += 2 * LANES) {
+        lanes first = lanes_load(band + i), second = lanes_load(band + i + LANES);
+        const float *late = band + i;
+        for (uint32_t k = 1; k < window; k++) {
+            late--;
+            first += lanes_load(late);
+            second += lanes_load(late + LANES);
+        }
+        first *= scale;
+        second *= scale;
+        greatest = lanes_greatest(lanes_greatest(first, second), greatest);
+        lanes_store(trigger->sums + i, first);
+        lanes_store(trigger->sums + i + LANES, second);
     }
     greatest = lanes_greatest(greatest, __builtin_shufflevector(greatest, greatest, 2, 3, 0, 1));
     return greatest[0] > greatest[1] ? greatest[0] : greatest[1];

@@ -33,7 +33,7 @@ struct trigger_setup {
     const struct bands *bands;           /* borrowed */
     uint32_t band, guard;                /* of the bank; guard is ignored where the class has none */
     double rate_hz;                      /* of the bank */
-    uint32_t slot_frames, block_slots;   /* of the bank */
+    uint32_t slot_frames, block_slots;   /* of the bank; block_slots a multiple of 8 */
     double frames_per_frame;             /* input frames per frame of the bank (its decimation) */
     double delay_frames;                 /* input frames by which the bank's input is late */
 };
