@@ -75,7 +75,7 @@ static void bad_lengths_are_refused(void **state)
 {
     (void)state;
     struct spectrum *spectrum = NULL;
-    static const uint32_t bad[] = {0, 8, 17, 1u << 21};
+    static const uint32_t bad[] = {0, 8, 17, 1u << 22};
     for (size_t i = 0; i < sizeof bad / sizeof bad[0]; i++)
         assert_int_equal(spectrum_create(bad[i], WINDOW_HANN, &spectrum), STATUS_BAD_ARGUMENT);
     assert_null(spectrum);
