@@ -92,6 +92,10 @@ const char *flow_outcome_kind_text(const struct outcome *outcome)
         return "advice";
     case OUTCOME_FINDING:
         return "finding";
+    case OUTCOME_EXPOSURE:
+        return "exposure";
+    case OUTCOME_SOURCE:
+        return "source";
     }
     return "unknown";
 }

@@ -168,7 +168,49 @@ struct finding_outcome {
     char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
 };
 
-enum outcome_kind { OUTCOME_EVENT, OUTCOME_CONTACT, OUTCOME_PHASE, OUTCOME_ADVICE, OUTCOME_FINDING };
+/* How the source's sound stands against one criterion, for a receiver that stays or flees as the criterion
+ * says. Levels that are not known are NAN. */
+struct exposure_outcome {
+    uint32_t stream, channel;
+    char job[IMPULSE_JOB_SIZE];
+    char set[NOTE_NAME_SIZE], criterion[NOTE_NAME_SIZE]; /* the criterion's document and name */
+    char metric[NOTE_NAME_SIZE], weighting[NOTE_NAME_SIZE], window[NOTE_NAME_SIZE];
+    char reference[NOTE_NAME_SIZE];                     /* of its levels: "1 uPa2 s" ... */
+    double value_db;                                    /* the criterion's */
+    double level_db;                                    /* received: summed over the window, or the loudest */
+    double at_750_m_db;                                 /* the same at 750 m */
+    double distance_m, distance_low_m, distance_high_m; /* where the value is just met; 0: nowhere */
+    uint32_t n;                                         /* sounds in the window */
+    bool reached;                                       /* level_db is at or above value_db */
+    double left;      /* impulses like the last until the value is met at the zone's edge */
+    int64_t start_ns; /* of the window's first sound */
+    bool unverified;  /* some number of the criterion is from memory */
+};
+
+/* Three numbers about the source that are never mixed, of the job's median impulse so far. */
+struct source_outcome {
+    uint32_t stream, channel;
+    char job[IMPULSE_JOB_SIZE];
+    uint32_t n_impulses;
+    double range_m;                                        /* to the channel; NAN where unknown */
+    double sel_db;                                         /* received, median */
+    double peak_db;                                        /* received, highest */
+    double at_750_m_db, at_750_m_low_db, at_750_m_high_db; /* SEL, with its 90 % interval */
+    double back_db, back_low_db, back_high_db; /* energy source level; NAN where it has no meaning */
+    char model[NOTE_NAME_SIZE];                /* the loss law */
+    double n_db;
+    char reason[FLOW_TEXT_SIZE]; /* why a number is missing */
+};
+
+enum outcome_kind {
+    OUTCOME_EVENT,
+    OUTCOME_CONTACT,
+    OUTCOME_PHASE,
+    OUTCOME_ADVICE,
+    OUTCOME_FINDING,
+    OUTCOME_EXPOSURE,
+    OUTCOME_SOURCE
+};
 
 /* What the watch says: the event it took, completed (an impulse's job and whose, a note's known time), or a
  * conclusion of its own. */
@@ -184,6 +226,8 @@ struct outcome {
         struct phase_outcome phase;
         struct advice_outcome advice;
         struct finding_outcome finding;
+        struct exposure_outcome exposure;
+        struct source_outcome source;
     } as;
 };
 

@@ -47,4 +47,8 @@ void body_append_decibels(struct text *out, const double *levels_db, uint32_t n)
 /* Seconds with six decimals, alone. */
 void body_append_time(struct text *out, int64_t ns);
 
+/* The bodies of what the tally says. */
+enum status body_of_exposure(const struct outcome *outcome, struct text *out);
+enum status body_of_source(const struct outcome *outcome, struct text *out);
+
 #endif

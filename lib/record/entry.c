@@ -227,6 +227,10 @@ enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, stru
         return advice_body(outcome, zero_unix_ns, out);
     case OUTCOME_FINDING:
         return finding_body(outcome, out);
+    case OUTCOME_EXPOSURE:
+        return body_of_exposure(outcome, out);
+    case OUTCOME_SOURCE:
+        return body_of_source(outcome, out);
     }
     return STATUS_BAD_ARGUMENT;
 }

@@ -1,0 +1,299 @@
+/* What the source's sound adds up to; see tally.h. */
+#include "rule/tally.h"
+#include "base/time.h"
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define MINUTE_NS (60 * TIME_NS_PER_S)
+#define KEPT_IMPULSES 4096 /* of the job, for the median: more than an hour of blows */
+
+/* One stream's sums. */
+struct sums {
+    struct exposure *exposure;
+    uint32_t channel; /* whose impulses they are; 0 before the first */
+    uint32_t n_impulses;
+    float sel_db[KEPT_IMPULSES]; /* of the job, a ring */
+    double peak_db;
+    bool changed;
+};
+
+struct tally {
+    struct tally_setup setup;
+    struct sums *sums; /* [n_streams] */
+    char job[IMPULSE_JOB_SIZE];
+    uint32_t run;
+    uint64_t n_exposures, n_sources; /* said in this run */
+    int64_t said_minute;
+};
+
+enum status tally_create(const struct tally_setup *setup, struct tally **out)
+{
+    if (!setup->criteria || setup->criteria->n == 0 || setup->n_streams < 1 ||
+        setup->n_streams > TALLY_MAX_STREAMS)
+        return STATUS_BAD_ARGUMENT;
+    struct tally *tally = calloc(1, sizeof *tally);
+    if (!tally)
+        return STATUS_NO_MEMORY;
+    tally->setup = *setup;
+    tally->sums = calloc(setup->n_streams, sizeof *tally->sums);
+    const struct exposure_setup exposure = {
+        .n_criteria = setup->criteria->n,
+        .criteria = setup->criteria->items,
+        .sound = setup->sound,
+        .how = BAND_WEIGHTING_CENTRE,
+        .reference_m = SOURCE_NORMAL_M,
+        .day_start_ns = setup->day_start_ns,
+        .level_spread_db = setup->level_spread_db,
+        .loss = {.n_db = setup->loss_n_db, .n_spread_db = setup->loss_n_spread_db}};
+    enum status status = tally->sums ? STATUS_OK : STATUS_NO_MEMORY;
+    for (uint32_t i = 0; i < setup->n_streams && status == STATUS_OK; i++) {
+        tally->sums[i].peak_db = -INFINITY;
+        status = exposure_create(&exposure, &tally->sums[i].exposure);
+    }
+    if (status != STATUS_OK) {
+        tally_destroy(tally);
+        return status;
+    }
+    *out = tally;
+    return STATUS_OK;
+}
+
+void tally_destroy(struct tally *tally)
+{
+    if (!tally)
+        return;
+    for (uint32_t i = 0; tally->sums && i < tally->setup.n_streams; i++)
+        exposure_destroy(tally->sums[i].exposure);
+    free(tally->sums);
+    free(tally);
+}
+
+static double range_of(const struct tally *tally, uint32_t stream, uint32_t channel)
+{
+    return tally->setup.range_m[stream - 1][channel - 1];
+}
+
+static void take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
+{
+    struct sums *sums = &tally->sums[stream - 1];
+    struct exposure_sound sound;
+    if (impulse->whose != IMPULSE_OURS || impulse->relative || impulse->refused)
+        return;
+    exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
+                        range_of(tally, stream, impulse->channel), &sound);
+    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
+        return;
+    sums->channel = impulse->channel;
+    sums->sel_db[sums->n_impulses++ % KEPT_IMPULSES] = (float)impulse->sel_db;
+    sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
+    sums->changed = true;
+}
+
+static void take_level(struct tally *tally, uint32_t stream, const struct level *level)
+{
+    struct sums *sums = &tally->sums[stream - 1];
+    struct exposure_sound sound;
+    if (tally->setup.sound != SOUND_CONTINUOUS || level->relative ||
+        (sums->channel && sums->channel != level->channel))
+        return;
+    exposure_of_level(level, range_of(tally, stream, level->channel), &sound);
+    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
+        return;
+    sums->channel = level->channel;
+    sums->changed = true;
+}
+
+static void begin_job(struct tally *tally, const char *job)
+{
+    snprintf(tally->job, sizeof tally->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
+    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
+        struct sums *sums = &tally->sums[i];
+        exposure_begin_job(sums->exposure);
+        sums->n_impulses = 0;
+        sums->peak_db = -INFINITY;
+    }
+}
+
+static double finite_or_nan(double x)
+{
+    return isfinite(x) ? x : NAN;
+}
+
+static void fill_place(const struct tally *tally, uint32_t i, uint32_t *stream, uint32_t *channel, char *job)
+{
+    *stream = i + 1;
+    *channel = tally->sums[i].channel;
+    memcpy(job, tally->job, IMPULSE_JOB_SIZE);
+}
+
+static void fill_criterion(const struct criterion *criterion, struct exposure_outcome *out)
+{
+    char weighting[WEIGHTING_NAME_SIZE] = "none";
+    if (criterion->weighting)
+        weighting_name(criterion->weighting, weighting);
+    snprintf(out->set, sizeof out->set, "%s", criterion->set);
+    snprintf(out->criterion, sizeof out->criterion, "%s", criterion->name);
+    snprintf(out->metric, sizeof out->metric, "%s", criterion_metric_text(criterion->metric));
+    snprintf(out->weighting, sizeof out->weighting, "%s", weighting);
+    snprintf(out->window, sizeof out->window, "%s", criterion_window_text(criterion->window));
+    snprintf(out->reference, sizeof out->reference, "%s", criterion_reference(criterion->metric));
+    out->value_db = criterion->value;
+    out->unverified = criterion_unverified(criterion);
+}
+
+/* False where the criterion judges other sound or nothing was added to it yet. */
+static bool fill_exposure(const struct tally *tally, uint32_t i, uint32_t c, int64_t watch_ns,
+                          struct exposure_outcome *out)
+{
+    struct exposure *exposure = tally->sums[i].exposure;
+    const struct criterion *criterion = &tally->setup.criteria->items[c];
+    struct exposure_state state;
+    struct exposure_distance distance;
+    struct exposure_left left;
+    if (exposure_get(exposure, c, watch_ns, &state) != STATUS_OK || state.first_ns < 0)
+        return false;
+    fill_place(tally, i, &out->stream, &out->channel, out->job);
+    fill_criterion(criterion, out);
+    out->level_db = finite_or_nan(state.level_db);
+    out->at_750_m_db = finite_or_nan(state.at_reference_db);
+    out->n = (uint32_t)state.n;
+    out->reached = state.reached;
+    out->start_ns = state.first_ns;
+    out->distance_m = out->distance_low_m = out->distance_high_m = out->left = NAN;
+    if (exposure_get_distance(exposure, c, criterion->flee_m_s, watch_ns, &distance) == STATUS_OK) {
+        out->distance_m = finite_or_nan(distance.distance_m);
+        out->distance_low_m = finite_or_nan(distance.low_m);
+        out->distance_high_m = finite_or_nan(distance.high_m);
+    }
+    if (isfinite(tally->setup.zone_edge_m) &&
+        exposure_get_left(exposure, c, tally->setup.zone_edge_m, criterion->flee_m_s, watch_ns, &left) ==
+            STATUS_OK)
+        out->left = left.left;
+    return true;
+}
+
+static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    for (uint32_t c = 0; c < tally->setup.criteria->n; c++) {
+        struct outcome outcome = {.kind = OUTCOME_EXPOSURE, .run = tally->run, .watch_ns = watch_ns};
+        if (!fill_exposure(tally, i, c, watch_ns, &outcome.as.exposure))
+            continue;
+        outcome.counter = ++tally->n_exposures;
+        sink->take(sink->context, &outcome);
+    }
+}
+
+static int by_level(const void *a, const void *b)
+{
+    float x = *(const float *)a, y = *(const float *)b;
+    return (x > y) - (x < y);
+}
+
+static double median_sel_db(const struct sums *sums)
+{
+    float sorted[KEPT_IMPULSES];
+    uint32_t n = sums->n_impulses < KEPT_IMPULSES ? sums->n_impulses : KEPT_IMPULSES;
+    memcpy(sorted, sums->sel_db, n * sizeof sorted[0]);
+    qsort(sorted, n, sizeof sorted[0], by_level);
+    return n % 2 ? sorted[n / 2] : 0.5 * ((double)sorted[n / 2 - 1] + sorted[n / 2]);
+}
+
+static void fill_numbers(const struct tally *tally, double sel_db, double range_m, struct source_outcome *out)
+{
+    const struct source_law law = {.metric = METRIC_SEL_SINGLE,
+                                   .low_hz = 10,
+                                   .high_hz = 2e4,
+                                   .loss = {.law = LOSS_POWER, .n_db = tally->setup.loss_n_db},
+                                   .n_spread_db = tally->setup.loss_n_spread_db};
+    const struct source_measurement measurement = {.metric = METRIC_SEL_SINGLE,
+                                                   .level_db = sel_db,
+                                                   .low_hz = 10,
+                                                   .high_hz = 2e4,
+                                                   .spread_db = tally->setup.level_spread_db,
+                                                   .range_m = range_m,
+                                                   .off_axis_deg = NAN,
+                                                   .sound_speed_m_s = 1500};
+    struct source_numbers numbers;
+    out->at_750_m_db = out->at_750_m_low_db = out->at_750_m_high_db = NAN;
+    out->back_db = out->back_low_db = out->back_high_db = out->n_db = NAN;
+    if (source_numbers_get(&measurement, &tally->setup.shape, &law, &numbers) != STATUS_OK)
+        return;
+    if (numbers.at_750_m.known) {
+        out->at_750_m_db = numbers.at_750_m.db;
+        out->at_750_m_low_db = numbers.at_750_m.low_db;
+        out->at_750_m_high_db = numbers.at_750_m.high_db;
+    }
+    if (numbers.back_calculated.known) {
+        out->back_db = numbers.back_calculated.db;
+        out->back_low_db = numbers.back_calculated.low_db;
+        out->back_high_db = numbers.back_calculated.high_db;
+    }
+    const char *reason = numbers.at_750_m.known ? numbers.back_calculated.reason : numbers.at_750_m.reason;
+    snprintf(out->reason, sizeof out->reason, "%s", reason);
+    snprintf(out->model, sizeof out->model, "%s", numbers.model);
+    out->n_db = numbers.n_db;
+}
+
+static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    const struct sums *sums = &tally->sums[i];
+    struct outcome outcome = {.kind = OUTCOME_SOURCE, .run = tally->run, .watch_ns = watch_ns};
+    struct source_outcome *out = &outcome.as.source;
+    if (sums->n_impulses == 0)
+        return;
+    fill_place(tally, i, &out->stream, &out->channel, out->job);
+    out->n_impulses = sums->n_impulses;
+    out->range_m = range_of(tally, i + 1, sums->channel);
+    out->sel_db = median_sel_db(sums);
+    out->peak_db = finite_or_nan(sums->peak_db);
+    fill_numbers(tally, out->sel_db, out->range_m, out);
+    outcome.counter = ++tally->n_sources;
+    sink->take(sink->context, &outcome);
+}
+
+static void say_all(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
+        if (!tally->sums[i].changed)
+            continue;
+        say_source(tally, i, watch_ns, sink);
+        say_exposures(tally, i, watch_ns, sink);
+        tally->sums[i].changed = false;
+    }
+}
+
+static void take_event(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
+{
+    const struct event *event = &outcome->as.event;
+    if (event->kind == EVENT_RUN) {
+        tally->run = outcome->run;
+        tally->n_exposures = tally->n_sources = 0;
+    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+        take_impulse(tally, event->stream, &event->as.impulse);
+    else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+        take_level(tally, event->stream, &event->as.level);
+    else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {
+        say_all(tally, outcome->watch_ns, sink);
+        begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "");
+    }
+}
+
+enum status tally_take(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
+{
+    int64_t minute = outcome->watch_ns / MINUTE_NS;
+    if (minute != tally->said_minute) {
+        tally->said_minute = minute;
+        say_all(tally, outcome->watch_ns, sink);
+    }
+    if (outcome->kind == OUTCOME_EVENT)
+        take_event(tally, outcome, sink);
+    return STATUS_OK;
+}
+
+enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    say_all(tally, watch_ns, sink);
+    return STATUS_OK;
+}

@@ -1,0 +1,43 @@
+/* What the source's sound adds up to: takes the watch's outcomes, keeps the sums of each job against the
+ * criteria that the site chose, and says them as outcomes of its own, each minute in which something was
+ * added and at the end of a job.
+ *
+ * Only impulses that the watch called ours are summed, only on calibrated channels; another project's never
+ * are. State is a function of the outcomes taken: taking them again from a ledger rebuilds it. Call order:
+ * create; take every outcome of the watch in order; destroy. */
+#ifndef RULE_TALLY_H
+#define RULE_TALLY_H
+
+#include "base/status.h"
+#include "flow.h"
+#include "level/criterion.h"
+#include "level/exposure.h"
+#include "level/source.h"
+#include <stdint.h>
+
+#define TALLY_MAX_STREAMS 8
+
+struct tally_setup {
+    const struct criteria *criteria; /* those to be judged, all of them; borrowed */
+    enum criterion_sound sound;      /* what the job makes: set, never guessed */
+    uint32_t n_streams;
+    double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown */
+    struct source_shape shape;
+    double loss_n_db, loss_n_spread_db; /* N lg r; how unsure N is, one standard deviation */
+    double level_spread_db;             /* of calibration and place */
+    double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */
+    int64_t day_start_ns;               /* watch time of any midnight where days are counted */
+};
+
+struct tally;
+
+/* About 6 MiB a stream, all of it now. STATUS_BAD_ARGUMENT for a setup that exposure_create refuses or
+ * without criteria; STATUS_NO_MEMORY. The caller owns *out. */
+enum status tally_create(const struct tally_setup *setup, struct tally **out);
+void tally_destroy(struct tally *tally);
+/* Takes one outcome; what it says goes to the sink, after the outcome itself, at its time. */
+enum status tally_take(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink);
+/* The run has ended: what was added since the last minute is said. */
+enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink);
+
+#endif
