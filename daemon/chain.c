@@ -1,6 +1,7 @@
 /* The whole chain; see chain.h. */
 #include "chain.h"
 #include "base/time.h"
+#include "channels.h"
 #include "clock.h"
 #include "files.h"
 #include "http/server.h"
@@ -20,6 +21,8 @@ struct chain {
     struct chain_setup setup;
     struct permit *permit;
     struct catalogue *catalogue;
+    struct criteria *criteria;
+    struct tally *tally; /* NULL where the settings name no criteria */
     struct text permit_text, inputs;
     uint32_t n_streams;
     struct stream *streams[SITE_MAX_STREAMS];
@@ -47,11 +50,13 @@ static enum status load_rules(struct chain *chain, struct problems *problems)
     enum status permit = permit_load(site->permit, problems, chain->permit);
     enum status calls =
         catalogue_load(site->calls, problems, &chain->setup.site->effective, chain->catalogue);
+    enum status criteria =
+        source_settings_criteria(&site->source, problems, &chain->setup.site->effective, chain->criteria);
     if (permit == STATUS_OK && files_read(site->permit, &chain->permit_text) != STATUS_OK)
         problems_add(problems, site->permit, 0, "", "cannot be read as text");
     if (problems->count != before)
         return STATUS_BAD_FORMAT;
-    return permit != STATUS_OK ? permit : calls;
+    return permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
 }
 
 void chain_check(struct site *site, struct problems *problems)
@@ -110,6 +115,43 @@ static void say_ledger_problem(struct chain *chain, struct problems *problems, c
     problems_add(problems, chain->setup.site->ledger, 0, "", "%s", problem);
 }
 
+/* The widest zone that has an edge. */
+static double zone_edge_m(const struct permit *permit)
+{
+    double edge_m = NAN;
+    for (uint32_t i = 0; i < permit->n_zones; i++)
+        if (isfinite(permit->zones[i].radius_m) && !(edge_m > permit->zones[i].radius_m))
+            edge_m = permit->zones[i].radius_m;
+    return edge_m;
+}
+
+static enum status create_tally(struct chain *chain)
+{
+    const struct site *site = chain->setup.site;
+    if (chain->criteria->n == 0)
+        return STATUS_OK;
+    struct tally_setup *setup = calloc(1, sizeof *setup);
+    if (!setup)
+        return STATUS_NO_MEMORY;
+    *setup = (struct tally_setup){.criteria = chain->criteria,
+                                  .sound = site->source.sound,
+                                  .n_streams = chain->n_streams,
+                                  .shape = site->source.shape,
+                                  .loss_n_db = site->source.loss_n_db,
+                                  .loss_n_spread_db = site->source.loss_n_spread_db,
+                                  .level_spread_db = site->source.level_spread_db,
+                                  .zone_edge_m = zone_edge_m(chain->permit)};
+    for (uint32_t i = 0; i < chain->n_streams; i++)
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
+            const struct channel_settings *channel = &site->streams[i].channels[c];
+            setup->range_m[i][c] =
+                sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
+        }
+    enum status status = tally_create(setup, &chain->tally);
+    free(setup);
+    return status;
+}
+
 static enum status open_ledger(struct chain *chain, struct problems *problems)
 {
     char problem[LEDGER_PROBLEM_SIZE] = "";
@@ -134,7 +176,9 @@ static enum status open_ledger(struct chain *chain, struct problems *problems)
                 setup.listening[i] |= 1U << c;
     status = watch_create(&setup, &chain->watch);
     if (status == STATUS_OK)
-        status = restore_watch(chain->ledger, chain->watch, &chain->restored, problem);
+        status = create_tally(chain);
+    if (status == STATUS_OK)
+        status = restore_watch(chain->ledger, chain->watch, chain->tally, &chain->restored, problem);
     if (status != STATUS_OK && *problem)
         say_ledger_problem(chain, problems, problem);
     return status;
@@ -236,7 +280,9 @@ enum status chain_create(const struct chain_setup *setup, struct problems *probl
     chain->setup = *setup;
     chain->permit = calloc(1, sizeof *chain->permit);
     chain->catalogue = calloc(1, sizeof *chain->catalogue);
-    enum status status = chain->permit && chain->catalogue ? load_rules(chain, problems) : STATUS_NO_MEMORY;
+    chain->criteria = calloc(1, sizeof *chain->criteria);
+    bool made = chain->permit && chain->catalogue && chain->criteria;
+    enum status status = made ? load_rules(chain, problems) : STATUS_NO_MEMORY;
     if (status == STATUS_OK)
         status = open_streams(chain, problems);
     if (status == STATUS_OK)
@@ -282,20 +328,12 @@ static enum status begin_record(struct chain *chain)
                               .input = chain->inputs.data};
     enum status status =
         recorder_begin(chain->recorder, &chain->mark, &facts, chain->permit, chain->permit_text.data);
-    for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++)
-        for (uint32_t c = 0; c < stream_get_facts(chain->streams[i])->n_channels && status == STATUS_OK;
-             c++) {
-            const struct channel_settings *channel = &site->streams[i].channels[c];
-            struct channel_facts channel_facts = {c + 1,
-                                                  channel->serial,
-                                                  site->streams[i].name,
-                                                  stream_get_facts(chain->streams[i])->rate_hz,
-                                                  channel->x_m,
-                                                  channel->y_m,
-                                                  channel->z_m};
-            status = recorder_calibration(chain->recorder, chain->mark.outage_end_ns, i + 1,
-                                          &channel->calibration, &channel_facts);
-        }
+    for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++) {
+        const struct input_facts *input = stream_get_facts(chain->streams[i]);
+        status = channels_record(chain->recorder, chain->mark.outage_end_ns,
+                                 chain->zero_unix_ns + chain->mark.outage_end_ns, i + 1, &site->streams[i],
+                                 input->n_channels, input->rate_hz);
+    }
     return status;
 }
 
@@ -303,6 +341,7 @@ static enum status create_watcher(struct chain *chain)
 {
     struct watcher_setup setup = {.merge = chain->merge,
                                   .watch = chain->watch,
+                                  .tally = chain->tally,
                                   .recorder = chain->recorder,
                                   .outbox = chain->outbox,
                                   .board = chain->board,
@@ -413,12 +452,14 @@ void chain_destroy(struct chain *chain)
     recorder_destroy(chain->recorder);
     board_destroy(chain->board);
     watch_destroy(chain->watch);
+    tally_destroy(chain->tally);
     restored_destroy(&chain->restored);
     text_destroy(&chain->permit_text);
     text_destroy(&chain->inputs);
     free(chain->notes);
     free(chain->permit);
     free(chain->catalogue);
+    free(chain->criteria);
     free(chain);
 }
 

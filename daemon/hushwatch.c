@@ -7,7 +7,7 @@ static void print_help(FILE *out)
 {
     fprintf(out, "usage: hushwatch VERB ...\n\n");
     for (const struct verb *verb = verbs; verb->name; verb++)
-        fprintf(out, "  %-8s %s\n", verb->name, verb->help);
+        fprintf(out, "  %-10s %s\n", verb->name, verb->help);
     fprintf(out,
             "\n'hushwatch VERB --help' tells more. Exit code: 0 good, 1 the check found something wrong,\n"
             "2 wrong use or settings, 3 the system failed.\n");

@@ -41,7 +41,7 @@ static void read_hydrophone(struct group_reader *group, void *out)
     read_place(group, &hydrophone->place);
     struct calibration *calibration = &hydrophone->calibration;
     calibration->role = ROLE_BOTH;
-    calibration->self_noise_db = NAN;
+    calibration->self_noise_db = calibration->expected_peak_db = NAN;
     bool sensitivity =
         group_number(group, "sensitivity_db", READER_REQUIRED, -260, -120, &calibration->sensitivity_db);
     bool gain = group_number(group, "gain_db", READER_REQUIRED, -60, 120, &calibration->gain_db);

@@ -1,5 +1,6 @@
 /* The site's settings; see site.h. */
 #include "settings/site.h"
+#include "base/time.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -27,14 +28,58 @@ static void read_path(struct group_reader *group, const char *folder, const char
         resolve(folder, path);
 }
 
+#define REFERENCE_HZ 250.0 /* of pistonphones: common practice, no source */
+
+/* Sensitivity as one value, or as points against frequency, whose value at REFERENCE_HZ then is the one for
+ * what has no frequency. */
+static bool read_sensitivity(struct group_reader *group, struct calibration *calibration)
+{
+    bool one =
+        group_number(group, "sensitivity_db", READER_OPTIONAL, -260, -100, &calibration->sensitivity_db);
+    unsigned n = group_numbers(group, "sensitivity_points_hz", READER_OPTIONAL, 0.1, 1e6,
+                               calibration->point_hz, CALIBRATION_MAX_POINTS);
+    unsigned levels = group_numbers(group, "sensitivity_points_db", READER_OPTIONAL, -260, -100,
+                                    calibration->point_db, CALIBRATION_MAX_POINTS);
+    if (n != levels) {
+        group_problem(
+            group, n > levels ? "sensitivity_points_hz" : "sensitivity_points_db",
+            "has %u numbers and its counterpart %u; allowed: as many in sensitivity_points_hz as in "
+            "sensitivity_points_db, at most %d",
+            n > levels ? n : levels, n > levels ? levels : n, CALIBRATION_MAX_POINTS);
+        return one;
+    }
+    for (unsigned i = 1; i < n; i++)
+        if (!(calibration->point_hz[i] > calibration->point_hz[i - 1])) {
+            group_problem(group, "sensitivity_points_hz", "has %g after %g; allowed: rising frequencies",
+                          calibration->point_hz[i], calibration->point_hz[i - 1]);
+            return one;
+        }
+    calibration->n_points = n;
+    if (!one && n > 0)
+        calibration->sensitivity_db = calibration_sensitivity_db(calibration, REFERENCE_HZ);
+    return one || n > 0;
+}
+
+static void read_date(struct group_reader *group, const char *key, char date[SITE_DATE_SIZE])
+{
+    char given[32] = "", whole[64];
+    int64_t unix_ns;
+    if (!group_string(group, key, READER_OPTIONAL, given, sizeof given))
+        return;
+    snprintf(whole, sizeof whole, "%sT00:00:00Z", given);
+    if (strlen(given) != SITE_DATE_SIZE - 1 || time_parse_utc(whole, &unix_ns) != STATUS_OK)
+        group_problem(group, key, "is \"%s\"; allowed: a date like 2026-03-01", given);
+    else
+        memcpy(date, given, SITE_DATE_SIZE);
+}
+
 static void read_channel(struct group_reader *group, struct channel_settings *channel)
 {
     struct calibration *calibration = &channel->calibration;
     unsigned role = calibration->role;
     group_word(group, "role", READER_OPTIONAL, role_words, 3, &role);
     calibration->role = (enum channel_role)role;
-    bool sensitivity =
-        group_number(group, "sensitivity_db", READER_OPTIONAL, -260, -100, &calibration->sensitivity_db);
+    bool sensitivity = read_sensitivity(group, calibration);
     group_number(group, "gain_db", READER_OPTIONAL, -60, 120, &calibration->gain_db);
     bool volts = group_number(group, "full_scale_v", READER_OPTIONAL, 1e-6, 1000, &calibration->full_scale_v);
     calibration->known = sensitivity && volts;
@@ -42,7 +87,10 @@ static void read_channel(struct group_reader *group, struct channel_settings *ch
         group_problem(group, sensitivity ? "full_scale_v" : "sensitivity_db",
                       "is missing; a calibrated channel has both sensitivity_db and full_scale_v");
     group_number(group, "self_noise_db", READER_OPTIONAL, -60, 200, &calibration->self_noise_db);
+    group_number(group, "expected_peak_db", READER_OPTIONAL, 100, 300, &calibration->expected_peak_db);
     group_string(group, "serial", READER_OPTIONAL, channel->serial, sizeof channel->serial);
+    read_date(group, "certificate_date", channel->certificate_date);
+    read_date(group, "due_date", channel->due_date);
     double place[3];
     unsigned n = group_numbers(group, "place_m", READER_OPTIONAL, -1e5, 1e5, place, 3);
     if (n == 3) {
@@ -58,7 +106,10 @@ static void read_channels(struct group_reader *group, struct stream_settings *st
 {
     for (unsigned i = 0; i < FLOW_MAX_CHANNELS; i++)
         stream->channels[i] = (struct channel_settings){
-            .calibration = {.role = ROLE_BOTH, .self_noise_db = NAN}, .x_m = NAN, .y_m = NAN, .z_m = NAN};
+            .calibration = {.role = ROLE_BOTH, .self_noise_db = NAN, .expected_peak_db = NAN},
+            .x_m = NAN,
+            .y_m = NAN,
+            .z_m = NAN};
     unsigned n = group_count(group, "channels", READER_OPTIONAL);
     if (n > FLOW_MAX_CHANNELS) {
         group_problem(group, "channels", "lists %u; allowed: at most %d", n, FLOW_MAX_CHANNELS);
@@ -220,6 +271,7 @@ enum status site_load(const char *path, struct problems *problems, struct site *
         group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
         read_pages(&root, out);
         read_evidence(&root, out);
+        source_settings_read(&root, out->folder, &out->source);
         read_streams(&root, out);
         group_done(&root);
     }

@@ -7,6 +7,7 @@
 #include "flow.h"
 #include "level/calibration.h"
 #include "settings/reader.h"
+#include "settings/source.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -14,10 +15,13 @@
 #define SITE_MAX_STATIONS 8
 #define SITE_PATH_SIZE 512
 #define SITE_MAX_FILES 64
+#define SITE_DATE_SIZE 11 /* "2026-03-01" and its terminator */
 
 struct channel_settings {
     struct calibration calibration;
     char serial[64];
+    char certificate_date[SITE_DATE_SIZE]; /* of the last calibration, "2026-03-01"; empty where not stated */
+    char due_date[SITE_DATE_SIZE];         /* until which it holds */
     double x_m, y_m,
         z_m; /* from the source's reference point: ahead, to starboard, down; NAN where unknown */
 };
@@ -47,6 +51,7 @@ struct site {
     uint32_t port;
     uint32_t n_stations;
     char stations[SITE_MAX_STATIONS][NOTE_NAME_SIZE]; /* crew stations that acknowledge for themselves */
+    struct source_settings source;
     uint32_t n_streams;
     struct stream_settings streams[SITE_MAX_STREAMS];
     double contact_gap_s;

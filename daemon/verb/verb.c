@@ -7,5 +7,6 @@ const struct verb verbs[] = {
     {"verify", "check that a ledger is as it was written", verb_verify},
     {"render", "render a scene to a WAV file and its truth to JSON", verb_render},
     {"report", "write one printable page about a watch, from its ledger alone", verb_report},
+    {"fieldcheck", "check a hydrophone against a tone of known level", verb_fieldcheck},
     {NULL, NULL, NULL},
 };

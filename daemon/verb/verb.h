@@ -20,6 +20,7 @@ struct verb {
 /* The table, closed by a NULL name. */
 extern const struct verb verbs[];
 
+int verb_fieldcheck(int argc, char **argv);
 int verb_verify(int argc, char **argv);
 int verb_report(int argc, char **argv);
 int verb_render(int argc, char **argv);

@@ -98,6 +98,24 @@ static const char *role_text(enum channel_role role)
     return role == ROLE_LISTEN ? "listen" : role == ROLE_MEASURE ? "measure" : "both";
 }
 
+/* Sensitivity against frequency: [[hz, db], ...], null for one value. */
+static void put_points(struct body *body, const struct calibration *calibration)
+{
+    body_key(body, "sensitivity_points");
+    if (calibration->n_points == 0) {
+        text_append(body->out, "null");
+        return;
+    }
+    for (uint32_t i = 0; i < calibration->n_points; i++) {
+        text_append(body->out, i ? ",[" : "[[");
+        text_json_number(body->out, calibration->point_hz[i], ROUND_DECIMALS_HZ);
+        text_append(body->out, ",");
+        text_json_number(body->out, calibration->point_db[i], ROUND_DECIMALS_DB);
+        text_append(body->out, "]");
+    }
+    text_append(body->out, "]");
+}
+
 enum status entry_body_calibration(uint32_t run, uint32_t stream, uint64_t counter,
                                    const struct calibration *calibration, const struct channel_facts *facts,
                                    struct text *out)
@@ -105,8 +123,11 @@ enum status entry_body_calibration(uint32_t run, uint32_t stream, uint64_t count
     double clip_db = calibration_clip_db(calibration);
     struct body body;
     body_begin(&body, out);
+    put_text(&body, "certificate_date", facts->certificate_date);
     body_integer(&body, "channel", facts->channel);
     body_number(&body, "clip_db", clip_db, ROUND_DECIMALS_DB);
+    put_text(&body, "due_date", facts->due_date);
+    body_number(&body, "expected_peak_db", calibration->expected_peak_db, ROUND_DECIMALS_DB);
     body_number(&body, "full_scale_v", calibration->full_scale_v, 6);
     body_number(&body, "gain_db", calibration->gain_db, ROUND_DECIMALS_DB);
     body_id(&body, run, stream, "calibration", counter);
@@ -116,11 +137,36 @@ enum status entry_body_calibration(uint32_t run, uint32_t stream, uint64_t count
     body_text(&body, "role", role_text(calibration->role));
     body_number(&body, "self_noise_db", calibration->self_noise_db, ROUND_DECIMALS_DB);
     body_number(&body, "sensitivity_db", calibration->sensitivity_db, ROUND_DECIMALS_DB);
+    put_points(&body, calibration);
     put_text(&body, "serial", facts->serial);
     body_integer(&body, "stream", stream);
+    body_text(&body, "what", "stated");
     body_number(&body, "x_m", facts->x_m, ROUND_DECIMALS_M);
     body_number(&body, "y_m", facts->y_m, ROUND_DECIMALS_M);
     body_number(&body, "z_m", facts->z_m, ROUND_DECIMALS_M);
+    return body_end(&body);
+}
+
+enum status entry_body_field_check(uint32_t run, uint32_t stream, uint64_t counter,
+                                   const struct field_check_facts *facts, struct text *out)
+{
+    struct body body;
+    body_begin(&body, out);
+    body_number(&body, "change_db", facts->change_db, ROUND_DECIMALS_DB);
+    body_integer(&body, "channel", facts->channel.channel);
+    body_number(&body, "difference_db", facts->measured_db - facts->tone_db, ROUND_DECIMALS_DB);
+    body_id(&body, run, stream, "calibration", counter);
+    put_text(&body, "input", facts->input);
+    body_number(&body, "measured_db", facts->measured_db, ROUND_DECIMALS_DB);
+    put_text(&body, "name", facts->channel.stream_name);
+    body_number(&body, "rate_hz", facts->channel.rate_hz, ROUND_DECIMALS_HZ);
+    body_number(&body, "seconds", facts->seconds, ROUND_DECIMALS_S);
+    body_number(&body, "sensitivity_db", facts->sensitivity_db, ROUND_DECIMALS_DB);
+    put_text(&body, "serial", facts->channel.serial);
+    body_integer(&body, "stream", stream);
+    body_number(&body, "tone_db", facts->tone_db, ROUND_DECIMALS_DB);
+    body_number(&body, "tone_hz", facts->tone_hz, ROUND_DECIMALS_HZ);
+    body_text(&body, "what", "field check");
     return body_end(&body);
 }
 

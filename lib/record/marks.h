@@ -46,6 +46,7 @@ enum status entry_body_health(uint32_t run, uint32_t stream, uint64_t counter, b
 struct channel_facts {
     uint32_t channel; /* from 1 */
     const char *serial;
+    const char *certificate_date, *due_date; /* "2026-03-01", or empty */
     const char *stream_name;
     double rate_hz;
     double x_m, y_m, z_m; /* NAN where unknown */
@@ -53,6 +54,21 @@ struct channel_facts {
 enum status entry_body_calibration(uint32_t run, uint32_t stream, uint64_t counter,
                                    const struct calibration *calibration, const struct channel_facts *facts,
                                    struct text *out);
+
+/* A field check: a channel heard a tone of known level, and the entry (of kind calibration too) says how far
+ * the stated sensitivity is from what was measured. */
+struct field_check_facts {
+    struct channel_facts channel;
+    double tone_hz, tone_db; /* what the calibrator gives, SPL in dB re 1 uPa */
+    double measured_db;      /* with the stated sensitivity */
+    double sensitivity_db;   /* stated, at tone_hz */
+    double
+        change_db;  /* of the difference since the last check of this hydrophone; NAN where there was none */
+    double seconds; /* of steady tone */
+    const char *input; /* what was heard */
+};
+enum status entry_body_field_check(uint32_t run, uint32_t stream, uint64_t counter,
+                                   const struct field_check_facts *facts, struct text *out);
 
 /* A change of the map from a stream's frames to watch time (stream > 0), or from watch time to UTC (stream 0,
  * map NULL): what it is from now on and why it changed. */

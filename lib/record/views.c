@@ -86,7 +86,10 @@ const struct schema_object views_schema[] = {
     VIEW("calibration",
         COLUMN("stream") COLUMN("channel") COLUMN("name") COLUMN("serial") COLUMN("role") COLUMN("known")
         COLUMN("sensitivity_db") COLUMN("gain_db") COLUMN("full_scale_v") COLUMN("self_noise_db")
-        COLUMN("clip_db") COLUMN("rate_hz") COLUMN("x_m") COLUMN("y_m") COLUMN("z_m")),
+        COLUMN("clip_db") COLUMN("rate_hz") COLUMN("x_m") COLUMN("y_m") COLUMN("z_m") COLUMN("what")
+        COLUMN("sensitivity_points") COLUMN("expected_peak_db") COLUMN("certificate_date") COLUMN("due_date")
+        COLUMN("tone_hz") COLUMN("tone_db") COLUMN("measured_db") COLUMN("difference_db") COLUMN("change_db")
+        COLUMN("seconds") COLUMN("input")),
     VIEW("clock",
         COLUMN("stream") COLUMN("anchor_frame") COLUMN("anchor_s") COLUMN("rate_hz") COLUMN("watch_zero_utc")
         COLUMN("offset_s") COLUMN("source") COLUMN("reason")),

@@ -409,6 +409,18 @@ static void marks_are_well_formed(void **state)
     struct channel_facts channel = {.channel = 1, .x_m = NAN, .y_m = NAN, .z_m = NAN};
     assert_int_equal(entry_body_calibration(1, 1, 1, &calibration, &channel, &body), STATUS_OK);
     assert_well_formed(body.data, "1.1.calibration.1");
+    calibration.n_points = 2;
+    calibration.point_hz[1] = 1000;
+    calibration.point_db[1] = -180.5;
+    assert_int_equal(entry_body_calibration(1, 1, 1, &calibration, &channel, &body), STATUS_OK);
+    assert_well_formed(body.data, "1.1.calibration.1");
+    assert_non_null(strstr(body.data, "\"sensitivity_points\":[[0.0,0.00],[1000.0,-180.50]],"));
+    struct field_check_facts check = {
+        .channel = channel, .tone_db = 145, .measured_db = 145.25, .change_db = NAN};
+    assert_int_equal(entry_body_field_check(2, 1, 1, &check, &body), STATUS_OK);
+    assert_well_formed(body.data, "2.1.calibration.1");
+    assert_non_null(strstr(body.data, "\"change_db\":null,"));
+    assert_non_null(strstr(body.data, "\"difference_db\":0.25,"));
     struct time_map map = {.anchor_frame = 9, .anchor_ns = 7000, .rate_hz = 48000.1};
     struct clock_facts clock = {.map = &map, .zero_unix_ns = ZERO_NS, .offset_s = NAN};
     assert_int_equal(entry_body_clock(1, 1, 1, &clock, &body), STATUS_OK);
