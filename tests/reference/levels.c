@@ -5,8 +5,10 @@
 #include "base/random.h"
 #include "dsp/filter.h"
 #include "dsp/spectrum.h"
+#include "level/impulse_bands.h"
 #include "level/impulse_measure.h"
 #include "level/meter.h"
+#include "level/percentile.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -135,19 +137,99 @@ static void impulses(void **state)
     struct impulse_window window = {x, N, RATE, 3, 1, INFINITY};
     struct impulse_measures m;
     assert_int_equal(impulse_measure(&window, &m), STATUS_OK);
-    double row[] = {m.sel_db, m.peak_db, m.peak_to_peak_db, m.rms90_db, m.t90_s, m.t5_frame};
+    double row[] = {m.sel_db,      m.peak_db,  m.peak_to_peak_db,      m.rms90_db, m.t90_s, m.t5_frame,
+                    m.effective_s, m.kurtosis, m.positive_impulse_pa_s};
     write_file("input", x, sizeof x);
     write_file("output", row, sizeof row);
     check("impulse", RATE);
 }
 
+struct running_rows {
+    uint32_t n;
+    double row[10][5]; /* SPL, fast, slow, kurtosis, SEL */
+    struct moments all;
+};
+
+static void keep_running(void *context, const struct found_level *level)
+{
+    struct running_rows *rows = context;
+    assert_true(rows->n < 10);
+    double *row = rows->row[rows->n++];
+    row[0] = level->spl_db;
+    row[1] = level->fast_max_db;
+    row[2] = level->slow_max_db;
+    row[3] = moments_kurtosis(&level->moments);
+    row[4] = level->spl_db + 10 * log10(level->frames / 48000.0);
+    moments_add(&rows->all, &level->moments);
+}
+
+/* Ten seconds of noise with clicks and a hum that comes and goes. */
+static void running_levels(void **state)
+{
+    (void)state;
+    enum { RATE = 48000, SECONDS = 10, N = RATE * SECONDS };
+    static float x[N];
+    struct random random;
+    random_reset(&random, 105);
+    for (int i = 0; i < N; i++) {
+        double t = (double)i / RATE, since = fmod(t + 0.3, 0.7), hum = fmod(t, 3) < 1.2 ? 2 : 0.1;
+        x[i] = (float)(0.3 + 0.5 * random_normal(&random) + hum * sin(2 * M_PI * 120 * t) +
+                       60 * exp(-since / 0.01) * sin(2 * M_PI * 500 * since));
+    }
+    static struct running_rows rows;
+    struct level_sink sink = {keep_running, &rows};
+    struct meter *meter;
+    assert_int_equal(meter_create(RATE, false, &meter), STATUS_OK);
+    meter_push(meter, x, N, &sink);
+    meter_finish(meter, &sink);
+    meter_destroy(meter);
+    assert_int_equal(rows.n, SECONDS);
+    double sorted[SECONDS], out[SECONDS * 5 + 5];
+    for (uint32_t i = 0; i < SECONDS; i++) {
+        percentile_insert(sorted, i, rows.row[i][0]);
+        memcpy(&out[i * 5], rows.row[i], sizeof rows.row[i]);
+    }
+    out[SECONDS * 5] = moments_kurtosis(&rows.all);
+    out[SECONDS * 5 + 1] = percentile_exceeded_db(sorted, SECONDS, 5);
+    out[SECONDS * 5 + 2] = percentile_exceeded_db(sorted, SECONDS, 50);
+    out[SECONDS * 5 + 3] = percentile_exceeded_db(sorted, SECONDS, 95);
+    out[SECONDS * 5 + 4] = percentile_energy_mean_db(sorted, SECONDS);
+    write_file("input", x, sizeof x);
+    write_file("output", out, sizeof out);
+    check("running", RATE);
+}
+
+/* One blow in noise: 256 ms of quiet, then a window of 0.45 s. */
+static void impulse_decidecades(void **state)
+{
+    (void)state;
+    enum { RATE = 96000, QUIET = 24576, N = 43200 };
+    static float x[QUIET + N];
+    struct random random;
+    random_reset(&random, 106);
+    struct filter low;
+    filter_low_pass(1, 100, RATE, &low);
+    for (int i = 0; i < QUIET + N; i++) {
+        double t = ((double)i - QUIET - 4800) / RATE, white = random_normal(&random);
+        double blow = t < 0 ? 0 : exp(-t / 0.04) * (sin(2 * M_PI * 150 * t) + 0.5 * sin(2 * M_PI * 1100 * t));
+        x[i] = (float)(2 + 5 * filter_step(&low, white) + 0.1 * white + 100 * blow);
+    }
+    struct impulse_bands *bands;
+    double out[LEVEL_MAX_BANDS];
+    assert_int_equal(impulse_bands_create(RATE, 124704, &bands), STATUS_OK);
+    impulse_bands_learn(bands, x, QUIET, 2);
+    impulse_bands_measure(bands, x + QUIET, N, 2, out);
+    impulse_bands_destroy(bands);
+    write_file("input", x, sizeof x);
+    write_file("output", out, sizeof out);
+    check("impulse_bands", RATE);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(spectra),
-        cmocka_unit_test(filters),
-        cmocka_unit_test(levels),
-        cmocka_unit_test(impulses),
+        cmocka_unit_test(spectra),  cmocka_unit_test(filters),        cmocka_unit_test(levels),
+        cmocka_unit_test(impulses), cmocka_unit_test(running_levels), cmocka_unit_test(impulse_decidecades),
     };
     return cmocka_run_group_tests_name("levels against numpy and scipy", tests, NULL, NULL);
 }

@@ -3,7 +3,7 @@
 PREFIXoutput of the program's results). Everything here is in double precision at the full rate: no decimation."""
 import sys
 import numpy
-from scipy import signal
+from scipy import signal, stats
 
 what, number, prefix = sys.argv[1], float(sys.argv[2]), sys.argv[3]
 x = numpy.fromfile(prefix + "input", numpy.float32).astype(float)
@@ -113,7 +113,72 @@ def impulse():
     wanted = [db(total / number), db(abs(p).max() ** 2), db((p.max() - p.min()) ** 2), db(0.9 * total / number / t90)]
     error = abs(ours[:4] - wanted).max()
     print("# figure impulse measures: within %.5f dB, T90 within %.2e s of numpy's" % (error, abs(ours[4] - t90)))
-    return error < 0.01 and abs(ours[4] - t90) < 1e-6 and abs(ours[5] - (t5 - 0.5)) < 0.1
+    # Effective duration from the fourth powers, a Gaussian background's share taken off; kurtosis by scipy.
+    fourths = (p ** 4).sum() - 6 * total - 3 * len(p)
+    effective = total ** 2 / fourths / number
+    peak = int(p.argmax())
+    start = int(numpy.flatnonzero(p[:peak] <= 0)[-1]) + 1
+    end = peak + int(numpy.argmax(p[peak:] <= 0))
+    positive = p[start:end].sum() / number
+    shape = [abs(ours[6] / effective - 1), abs(ours[7] / stats.kurtosis(p, fisher=False) - 1), abs(ours[8] / positive - 1)]
+    print("# figure effective duration, kurtosis, positive impulse: within %.1e, %.1e, %.1e of numpy's and scipy's" % tuple(shape))
+    return error < 0.01 and abs(ours[4] - t90) < 1e-6 and abs(ours[5] - (t5 - 0.5)) < 0.1 and max(shape) < 1e-4
 
 
-sys.exit(0 if {"spectrum": spectrum, "filter": filters, "levels": levels, "impulse": impulse}[what]() else 1)
+def running():
+    """Exponential averages by scipy.signal.lfilter at every sample, kurtosis by scipy.stats, percentiles by numpy."""
+    ours = numpy.fromfile(prefix + "output")
+    rate, n = int(number), 10
+    rows, seconds, y = ours[:50].reshape(n, 5), x.reshape(n, rate), numpy.zeros(2)
+    dc, error = seconds[0].mean(), numpy.zeros(5)
+    for k in range(n):
+        if k:
+            dc += (seconds[k].mean() - dc) / 8
+        square = (seconds[k] - dc) ** 2
+        wanted = [db(square.mean()), 0, 0, stats.kurtosis(seconds[k], fisher=False), db(square.sum() / rate)]
+        for j, tau in enumerate((0.125, 1.0)):
+            a = 1 - numpy.exp(-1 / (rate * tau))
+            weighted, _ = signal.lfilter([a], [1, a - 1], square, zi=[(1 - a) * y[j]])
+            y[j], wanted[1 + j] = weighted[-1], db(weighted.max())
+        error = numpy.maximum(error, abs(rows[k] - wanted))
+    error[3] = max(error[3], abs(ours[50] - stats.kurtosis(x, fisher=False)))
+    spl = rows[:, 0]
+    levels_error = max(abs(ours[51:54] - numpy.percentile(spl, [95, 50, 5])).max(),
+                       abs(ours[54] - 10 * numpy.log10((10 ** (spl / 10)).mean())))
+    print("# figure running levels: SPL within %.5f, fast %.4f, slow %.4f dB, kurtosis within %.1e, SEL %.5f dB, "
+          "percentiles and energy mean within %.1e dB of numpy's and scipy's" % (*error, levels_error))
+    return error[0] < 1e-3 and error[1] < 0.05 and error[2] < 0.01 and error[3] < 0.01 and error[4] < 1e-3 and \
+        levels_error < 1e-9
+
+
+def impulse_bands():
+    """Energy spectral densities by numpy.fft.rfft of the window and of the quiet before it, scipy's Tukey taper."""
+    ours, quiet, n = numpy.fromfile(prefix + "output"), 24576, 43200
+    rate, size = int(number), 65536
+
+    def energies(piece, padded):
+        taper = int(0.016 * rate)
+        window = numpy.ones(len(piece))
+        ramp = 0.5 - 0.5 * numpy.cos(numpy.pi * (numpy.arange(taper) + 0.5) / taper)
+        window[:taper], window[-taper:] = ramp, ramp[::-1]
+        power = abs(numpy.fft.rfft((piece - 2) * window, padded)) ** 2 / padded
+        power[1:-1] *= 2
+        k, bin_hz, found = numpy.arange(len(power)), rate / padded, []
+        for b in range(-20, 27):
+            low, high = 1000 * 10 ** ((b - 0.5) / 10) / bin_hz, 1000 * 10 ** ((b + 0.5) / 10) / bin_hz
+            found.append(power @ numpy.clip(numpy.minimum(k + 0.5, high) - numpy.maximum(k - 0.5, low), 0, 1))
+        return numpy.array(found), (window ** 2).sum()
+
+    background, background_weight = energies(x[:quiet], 32768)
+    whole, weight = energies(x[quiet:quiet + n], size)
+    background *= weight / background_weight
+    stands_out = whole > 2 * background
+    n_bands = int(numpy.sum(1000 * 10 ** ((numpy.arange(-20, 27) + 0.5) / 10) < 0.47 * rate))
+    stands_out[n_bands:] = False
+    error = abs(ours[stands_out] - db((whole - background)[stands_out] / rate)).max()
+    print("# figure decidecade SEL of an impulse: %d bands stand out, within %.5f dB of numpy's" % (stands_out.sum(), error))
+    return error < 0.01 and 5 < stands_out.sum() < n_bands and (numpy.isfinite(ours) == stands_out).all()
+
+
+sys.exit(0 if {"spectrum": spectrum, "filter": filters, "levels": levels, "impulse": impulse, "running": running,
+          "impulse_bands": impulse_bands}[what]() else 1)
