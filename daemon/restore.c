@@ -9,6 +9,7 @@
 
 struct rebuilding {
     struct watch *watch;
+    struct tally *tally;
     struct restored *restored;
     char *problem;
     bool has_zero;
@@ -30,12 +31,21 @@ static void forget(struct restored_entry *entry)
     free(entry->body);
 }
 
+/* What the tally said of the past is in the ledger. */
+static void drop_sums(void *context, const struct outcome *outcome)
+{
+    (void)context;
+    (void)outcome;
+}
+
 /* A conclusion of the rebuilt watch waits here until the ledger is seen to hold it. */
 static void take_outcome(void *context, const struct outcome *outcome)
 {
     struct rebuilding *rebuilding = context;
     struct restored *restored = rebuilding->restored;
     char utc[TIME_UTC_SIZE];
+    if (rebuilding->tally)
+        tally_take(rebuilding->tally, outcome, &(struct outcome_sink){drop_sums, NULL});
     if (outcome->kind == OUTCOME_EVENT || rebuilding->status != STATUS_OK)
         return;
     if (restored->n_missing == restored->capacity) {
@@ -133,12 +143,12 @@ static enum status take_entry(void *context, const struct entry *entry)
     return status;
 }
 
-enum status restore_watch(struct ledger *ledger, struct watch *watch, struct restored *out,
-                          char problem[LEDGER_PROBLEM_SIZE])
+enum status restore_watch(struct ledger *ledger, struct watch *watch, struct tally *tally,
+                          struct restored *out, char problem[LEDGER_PROBLEM_SIZE])
 {
     *out = (struct restored){0};
     *problem = '\0';
-    struct rebuilding rebuilding = {.watch = watch, .restored = out, .problem = problem};
+    struct rebuilding rebuilding = {.watch = watch, .tally = tally, .restored = out, .problem = problem};
     enum status status = ledger_read(ledger, &(struct ledger_query){0}, take_entry, &rebuilding);
     text_destroy(&rebuilding.body);
     if (status != STATUS_OK) {

@@ -4,6 +4,7 @@
 
 #include "base/status.h"
 #include "ledger/ledger.h"
+#include "rule/tally.h"
 #include "rule/watch.h"
 #include <stdint.h>
 
@@ -21,10 +22,11 @@ struct restored {
     struct restored_entry *missing; /* in order */
 };
 
-/* Pushes the inputs of the ledger into the watch. Conclusions that the ledger lacks are returned, so that
- * they can be written first. STATUS_BAD_FORMAT with a problem that names the entry. */
-enum status restore_watch(struct ledger *ledger, struct watch *watch, struct restored *out,
-                          char problem[LEDGER_PROBLEM_SIZE]);
+/* Pushes the inputs of the ledger into the watch, and what the watch says of them into the tally (NULL:
+ * none). Conclusions that the ledger lacks are returned, so that they can be written first. STATUS_BAD_FORMAT
+ * with a problem that names the entry. */
+enum status restore_watch(struct ledger *ledger, struct watch *watch, struct tally *tally,
+                          struct restored *out, char problem[LEDGER_PROBLEM_SIZE]);
 void restored_destroy(struct restored *restored);
 
 #endif

@@ -78,8 +78,17 @@ static void count(struct watcher *watcher, const struct outcome *outcome)
     pthread_mutex_unlock(&watcher->lock);
 }
 
+/* What the tally says of the outcomes. */
+static void take_sums(void *context, const struct outcome *outcome)
+{
+    struct watcher *watcher = context;
+    hearing_take(watcher->hearing, outcome);
+    keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
+}
+
 static void take_outcome(void *context, const struct outcome *outcome)
 {
+    const struct outcome_sink sums = {take_sums, context};
     struct watcher *watcher = context;
     if (outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_NOTE)
         watcher->note_counter = outcome->counter;
@@ -94,6 +103,8 @@ static void take_outcome(void *context, const struct outcome *outcome)
         outcome->as.event.kind == EVENT_NOTE)
         watcher->changed = true;
     keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
+    if (watcher->setup.tally)
+        keep_status(watcher, tally_take(watcher->setup.tally, outcome, &sums));
 }
 
 static void push(struct watcher *watcher, struct event *event)
@@ -294,6 +305,9 @@ static void *run_watch(void *context)
         ;
     struct watcher_state state;
     watcher_get_state(watcher, &state);
+    if (watcher->setup.tally)
+        keep_status(watcher, tally_finish(watcher->setup.tally, state.watch_ns,
+                                          &(struct outcome_sink){take_sums, watcher}));
     keep_status(watcher, recorder_finish(watcher->setup.recorder, state.watch_ns));
     watcher->changed = true;
     publish(watcher, state.watch_ns);

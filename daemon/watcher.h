@@ -8,6 +8,7 @@
 #include "ledger/outbox.h"
 #include "merge.h"
 #include "recorder.h"
+#include "rule/tally.h"
 #include "rule/watch.h"
 #include "settings/notes.h"
 #include "stream.h"
@@ -20,6 +21,7 @@ struct watcher;
 struct watcher_setup {
     struct merge *merge;
     struct watch *watch;
+    struct tally *tally; /* NULL: nothing is summed */
     struct recorder *recorder;
     struct outbox *outbox;
     struct board *board; /* NULL: nobody looks */
