@@ -9,7 +9,7 @@
 #define GOLDEN 0.6180339887498949
 #define DEGREE (M_PI / 180.0)
 
-enum status field_check(const struct field_source *sources, uint32_t n)
+enum status field_sources_check(const struct field_source *sources, uint32_t n)
 {
     if (n == 0 || n > FIELD_MAX_SOURCES)
         return STATUS_OUT_OF_RANGE;
@@ -37,7 +37,7 @@ double field_level_db(const struct field_source *sources, uint32_t n, double eas
 enum status field_grid_db(const struct field_source *sources, uint32_t n, const struct field_grid *grid,
                           double *out_db)
 {
-    if (field_check(sources, n) != STATUS_OK || !isfinite(grid->west_m) || !isfinite(grid->south_m) ||
+    if (field_sources_check(sources, n) != STATUS_OK || !isfinite(grid->west_m) || !isfinite(grid->south_m) ||
         !isfinite(grid->step_m) || !(grid->step_m > 0.0) || grid->n_east == 0 || grid->n_north == 0)
         return STATUS_OUT_OF_RANGE;
     for (uint32_t row = 0; row < grid->n_north; row++)
@@ -146,7 +146,7 @@ static void sharpen(const struct ray *ray, double *bearing, double *radius)
 enum status field_zone_get(const struct field_source *sources, uint32_t n, double east_m, double north_m,
                            double threshold_db, struct field_zone *out)
 {
-    if (field_check(sources, n) != STATUS_OK || !isfinite(east_m) || !isfinite(north_m) ||
+    if (field_sources_check(sources, n) != STATUS_OK || !isfinite(east_m) || !isfinite(north_m) ||
         !isfinite(threshold_db))
         return STATUS_OUT_OF_RANGE;
     struct ray ray = {sources, n, east_m, north_m, threshold_db, 0.0};

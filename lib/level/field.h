@@ -35,11 +35,11 @@ struct field_zone {
 
 /* STATUS_OUT_OF_RANGE: no source, more than FIELD_MAX_SOURCES, a place or level that is not finite (a level
  * may be -INFINITY), an at_m not above 0 or a law that loss_check refuses. */
-enum status field_check(const struct field_source *sources, uint32_t n);
-/* Level at a place, dB; -INFINITY where all are silent. The sources passed field_check. */
+enum status field_sources_check(const struct field_source *sources, uint32_t n);
+/* Level at a place, dB; -INFINITY where all are silent. The sources passed field_sources_check. */
 double field_level_db(const struct field_source *sources, uint32_t n, double east_m, double north_m);
 /* Levels of a grid, row by row from the south, each from the west: out_db[n_north * n_east].
- * STATUS_OUT_OF_RANGE as field_check and for a bad grid; out_db is untouched then. */
+ * STATUS_OUT_OF_RANGE as field_sources_check and for a bad grid; out_db is untouched then. */
 enum status field_grid_db(const struct field_source *sources, uint32_t n, const struct field_grid *grid,
                           double *out_db);
 /* The middle of the sources' places: what a zone around the whole is measured from unless the permit says

@@ -49,6 +49,33 @@ double source_range_m(const double source[3], const double hydrophone[3])
     return isfinite(sum) ? sqrt(sum) : (double)NAN;
 }
 
+/* Decades between two ranges that lie outside those of the fit. */
+static double decades_outside(const struct fitted *fitted, double from_m, double to_m)
+{
+    double low = log10(fmin(from_m, to_m)), high = log10(fmax(from_m, to_m));
+    double inside = fmin(high, log10(fitted->farthest_m)) - fmax(low, log10(fitted->nearest_m));
+    return high - low - fmax(inside, 0.0);
+}
+
+void source_sea_between(void *context, double frequency_hz, double from_m, double to_m, double *out_db,
+                        double *out_spread_db)
+{
+    const struct source_sea *sea = context;
+    const struct source_law *law = NULL;
+    for (uint32_t i = 0; i < sea->n_laws && !law; i++)
+        if (source_law_covers(&sea->laws[i], frequency_hz, frequency_hz))
+            law = &sea->laws[i];
+    struct loss loss = law ? law->loss : (struct loss){.law = LOSS_POWER, .n_db = sea->n_db};
+    if (sea->has_water)
+        loss.absorption_db_m = absorption_db_m(&sea->water, frequency_hz);
+    double decades = fabs(log10(to_m / from_m));
+    double spread = (law ? law->n_spread_db : SOURCE_ASSUMED_N_SPREAD_DB) * decades;
+    if (law && law->is_fitted)
+        spread = hypot(spread, SOURCE_ASSUMED_N_SPREAD_DB * decades_outside(&law->fitted, from_m, to_m));
+    *out_db = loss_between_db(&loss, from_m, to_m);
+    *out_spread_db = spread;
+}
+
 /* Why nothing but the received level can be given; NULL when more can. */
 static const char *received_only(const struct source_measurement *m, const struct source_law *law)
 {

@@ -15,9 +15,11 @@
 
 #include "base/status.h"
 #include "level/criterion.h"
+#include "sea/absorption.h"
 #include "sea/fit.h"
 #include "sea/loss.h"
 #include <stdbool.h>
+#include <stdint.h>
 
 #define SOURCE_NORMAL_M 750.0
 #define SOURCE_NORMAL_TOLERANCE 0.05
@@ -78,6 +80,24 @@ struct source_numbers {
     double n_db, n_spread_db; /* NAN where the law has no N */
     bool is_fitted;
 };
+
+/* The laws of a sea, one a band, and what to think where there is none. */
+#define SOURCE_MAX_LAWS 8
+struct source_sea {
+    uint32_t n_laws;
+    struct source_law
+        laws[SOURCE_MAX_LAWS]; /* of SPL or single SEL; the first that covers a frequency holds */
+    bool has_water;
+    struct absorption water; /* taken instead of the laws' own absorption, at each frequency */
+    double n_db;             /* where no law covers: this N, with SOURCE_ASSUMED_N_SPREAD_DB */
+};
+
+/* What a band's level falls by from one range to another, dB, and the standard deviation of that: spread of N
+ * times the decades between; of a fitted law SOURCE_ASSUMED_N_SPREAD_DB more, in squares, for the decades
+ * that lie outside the ranges of the fit, where the slope is as unknown as one never fitted. Grows with to_m.
+ * context: a struct source_sea, borrowed; the shape of exposure_loss.between (level/exposure.h). */
+void source_sea_between(void *context, double frequency_hz, double from_m, double to_m, double *out_db,
+                        double *out_spread_db);
 
 /* law may be NULL: none is known. STATUS_OUT_OF_RANGE for a level, band or spread that is not finite, or a
  * law that loss_check refuses; *out is untouched then. */

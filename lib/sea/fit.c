@@ -133,6 +133,29 @@ static void gather(struct fit *fit)
     }
 }
 
+/* Whether enough points stand at a place or next to it for it to be no stray range. */
+static bool is_held(const struct fit *fit, uint32_t place)
+{
+    uint32_t n = 0;
+    for (uint32_t i = 0; i < fit->n_places; i++)
+        if (abs(fit->place_key[i] - fit->place_key[place]) <= 1)
+            n += fit->place_n[i];
+    return n >= LEAST_IN_PLACE;
+}
+
+static void find_reach(const struct fit *fit, struct fitted *out)
+{
+    double low = INFINITY, high = -INFINITY;
+    for (uint32_t i = 0; i < fit->n_samples; i++) {
+        if (is_held(fit, fit->samples[i].place)) {
+            low = fmin(low, fit->samples[i].x);
+            high = fmax(high, fit->samples[i].x);
+        }
+    }
+    out->nearest_m = FIT_REFERENCE_M * pow(10.0, low);
+    out->farthest_m = FIT_REFERENCE_M * pow(10.0, high);
+}
+
 static int compare_doubles(const void *a, const void *b)
 {
     double x = *(const double *)a, y = *(const double *)b;
@@ -144,16 +167,6 @@ static int compare_sources(const void *a, const void *b)
     const struct source_sum *x = a, *y = b;
     double p = x->high_x - x->low_x, q = y->high_x - y->low_x;
     return (p > q) - (p < q);
-}
-
-/* Whether enough points stand at a place or next to it for it to be no stray range. */
-static bool is_held(const struct fit *fit, uint32_t place)
-{
-    uint32_t n = 0;
-    for (uint32_t i = 0; i < fit->n_places; i++)
-        if (abs(fit->place_key[i] - fit->place_key[place]) <= 1)
-            n += fit->place_n[i];
-    return n >= LEAST_IN_PLACE;
 }
 
 /* lg of the range ratio within the source level of the median sample. */
@@ -390,6 +403,7 @@ enum status fit_get(struct fit *fit, struct fitted *out)
                  result.quantile * sqrt(result.variance[0][0]));
     result.level_low_db = result.level_db - half;
     result.level_high_db = result.level_db + half;
+    find_reach(fit, &result);
     result.range_ratio = pow(10.0, spread);
     result.n_points = fit->n_samples;
     result.n_places = fit->n_places;

@@ -44,6 +44,7 @@ struct fitted {
     double level_low_db, level_high_db; /* holds 90 % of single impulses there, not only their mean */
     double scatter_db;                  /* robust standard deviation of one point about the law */
     double range_ratio; /* highest to lowest, within the source level that the median point belongs to */
+    double nearest_m, farthest_m; /* of the points that count */
     uint32_t n_points, n_places;
     double absorption_db_m;
     double slope_db, bend_db; /* of the law that moves levels: slope_db x + bend_db x^2 */

@@ -121,16 +121,16 @@ static void bad_sources_are_refused(void **state)
     (void)state;
     struct field_source one = source(0, 0, 180, 10, 15);
     struct field_zone out = {.radius_m = 7};
-    assert_int_equal(field_check(&one, 0), STATUS_OUT_OF_RANGE);
-    assert_int_equal(field_check(&one, FIELD_MAX_SOURCES + 1), STATUS_OUT_OF_RANGE);
+    assert_int_equal(field_sources_check(&one, 0), STATUS_OUT_OF_RANGE);
+    assert_int_equal(field_sources_check(&one, FIELD_MAX_SOURCES + 1), STATUS_OUT_OF_RANGE);
     one.at_m = 0;
     assert_int_equal(field_zone_get(&one, 1, 0, 0, 160, &out), STATUS_OUT_OF_RANGE);
     one = source(0, NAN, 180, 10, 15);
-    assert_int_equal(field_check(&one, 1), STATUS_OUT_OF_RANGE);
+    assert_int_equal(field_sources_check(&one, 1), STATUS_OUT_OF_RANGE);
     one = source(0, 0, INFINITY, 10, 15);
-    assert_int_equal(field_check(&one, 1), STATUS_OUT_OF_RANGE);
+    assert_int_equal(field_sources_check(&one, 1), STATUS_OUT_OF_RANGE);
     one = source(0, 0, 180, 10, -1);
-    assert_int_equal(field_check(&one, 1), STATUS_OUT_OF_RANGE);
+    assert_int_equal(field_sources_check(&one, 1), STATUS_OUT_OF_RANGE);
     assert_true(out.radius_m == 7);
 }
 

@@ -41,6 +41,8 @@ static void agrees_with_least_squares(void **state)
     assert_near(law.n_db, 15.022632, 0.06);
     assert_near(law.level_db, 205.107784 - 15.022632 * log10(750), 0.15);
     assert_near(law.range_ratio, 100, 1e-9);
+    assert_near(law.nearest_m, 10, 1e-9);
+    assert_near(law.farthest_m, 1000, 1e-9);
     assert_int_equal(law.n_places, 5);
     assert_true(law.n_low_db < 15.022632 && law.n_high_db > 15.022632);
     fit_destroy(fit);

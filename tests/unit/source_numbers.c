@@ -178,6 +178,37 @@ static void a_fit_moves_levels(void **state)
     assert_true(n.is_fitted && n.n_spread_db < SOURCE_ASSUMED_N_SPREAD_DB);
 }
 
+/* Clicks do not fall by the law of a pile's band; absorption is each frequency's own. */
+static void a_sea_has_a_law_for_each_band(void **state)
+{
+    (void)state;
+    struct source_sea sea = {.n_laws = 1, .laws = {fifteen()}, .n_db = 20};
+    double db, spread;
+    sea.laws[0].low_hz = 100;
+    sea.laws[0].high_hz = 500;
+    sea.laws[0].n_spread_db = 0.3;
+    source_sea_between(&sea, 200, 750, 7500, &db, &spread);
+    assert_near(db, 15, 1e-9);
+    assert_near(spread, 0.3, 1e-9);
+    source_sea_between(&sea, 130000, 750, 7500, &db, &spread);
+    assert_near(db, 20, 1e-9);
+    assert_near(spread, SOURCE_ASSUMED_N_SPREAD_DB, 1e-9);
+    sea.has_water = true;
+    sea.water = absorption_of(10, 35, 0, 8);
+    source_sea_between(&sea, 130000, 750, 1750, &db, &spread);
+    assert_near(db, 20 * log10(1750.0 / 750) + 41.1118, 1e-3); /* Francois and Garrison, dB/km */
+    sea.has_water = false;
+    sea.laws[0].is_fitted = true;
+    sea.laws[0].fitted = (struct fitted){.nearest_m = 375, .farthest_m = 1500};
+    source_sea_between(&sea, 200, 1500, 375, &db, &spread);
+    assert_near(db, -15 * log10(4), 1e-9);
+    assert_near(spread, 0.3 * log10(4), 1e-9);
+    source_sea_between(&sea, 200, 750, 15000, &db, &spread); /* a decade beyond what was heard */
+    assert_near(spread, hypot(0.3 * log10(20), 2.5), 1e-9);
+    source_sea_between(&sea, 200, 37.5, 3.75, &db, &spread); /* all of it nearer */
+    assert_near(spread, hypot(0.3, 2.5), 1e-9);
+}
+
 static void bad_input_is_refused(void **state)
 {
     (void)state;
@@ -207,6 +238,7 @@ int main(void)
         cmocka_unit_test(a_source_level_only_where_it_means_something),
         cmocka_unit_test(a_pile_is_normalised_by_its_own_law),
         cmocka_unit_test(a_fit_moves_levels),
+        cmocka_unit_test(a_sea_has_a_law_for_each_band),
         cmocka_unit_test(bad_input_is_refused),
     };
     return cmocka_run_group_tests_name("source_numbers", tests, NULL, NULL);
