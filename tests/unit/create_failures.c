@@ -11,6 +11,7 @@
 #include "dsp/decimate.h"
 #include "dsp/spectrum.h"
 #include "http/board.h"
+#include "level/exposure.h"
 #include "level/health.h"
 #include "level/impulses.h"
 #include "level/meter.h"
@@ -22,6 +23,7 @@
 #include "rule/watch.h"
 #include "scene/render.h"
 #include "settings/catalogue.h"
+#include "settings/criteria.h"
 #include "settings/permit.h"
 #include "settings/scene.h"
 #include "watcher.h"
@@ -124,6 +126,7 @@ void __wrap_fftwf_free(void *pointer)
 static struct catalogue catalogue;
 static struct permit permit;
 static struct scene_file scene;
+static struct criteria criteria;
 
 struct create_case {
     const char *name;
@@ -195,6 +198,11 @@ CASE(board,
          &(struct board_setup){
              .site = "x", .permit = &permit, .run = 1, .n_stations = 1, .stations = {"crew"}, .n_streams = 2},
          &made))
+CASE(exposure, exposure_create(&(struct exposure_setup){.n_criteria = criteria.n,
+                                                        .criteria = criteria.items,
+                                                        .reference_m = 750,
+                                                        .loss = {.n_db = 15}},
+                               &made))
 CASE(render, render_create(&scene.scene, &made))
 
 #define LINE(object)                                                                                         \
@@ -202,9 +210,10 @@ CASE(render, render_create(&scene.scene, &made))
 #object, make_##object, end_##object                                                                 \
     }
 static const struct create_case cases[] = {
-    LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),   LINE(health), LINE(impulse_finder),
-    LINE(tones),     LINE(pulses),   LINE(gate),       LINE(blocks),  LINE(strips), LINE(listen),
-    LINE(watch),     LINE(minutes),  LINE(merge),      LINE(watcher), LINE(board),  LINE(render),
+    LINE(decimator),      LINE(spectrum), LINE(background), LINE(meter),    LINE(health),
+    LINE(impulse_finder), LINE(tones),    LINE(pulses),     LINE(gate),     LINE(blocks),
+    LINE(strips),         LINE(listen),   LINE(watch),      LINE(minutes),  LINE(merge),
+    LINE(watcher),        LINE(board),    LINE(render),     LINE(exposure),
 };
 
 static void fail_each_allocation(const struct create_case *one)
@@ -251,6 +260,7 @@ int main(void)
     struct problems problems = {0};
     if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
         permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
+        criteria_load("config/criteria/fish-fhwg-2008.cfg", &problems, NULL, &criteria) != STATUS_OK ||
         scene_load("config/scenes/demonstration.cfg", &problems, &scene) != STATUS_OK) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);
         return 1;
