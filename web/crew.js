@@ -1,7 +1,7 @@
 // The crew's page: one instruction, why, since when, earliest restart and what it needs, and a way to acknowledge.
 // A fault is shown beside the instruction and never in its place; only 'carry on' and 'may start' are withdrawn.
 import {
-  $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
+  $, Alarm, adviceFor, adviceWords, answerOf, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
   remember, remembered, sentence, setShape, setText, span, startPalette, startSound, utc, watchNow,
 } from "/page.js";
 
@@ -33,7 +33,7 @@ function showMessage(advice, withdrawn, waiting) {
   const box = $("instruction");
   box.dataset.level = words.level;
   box.dataset.words = words.words.length > 8 ? "long" : "short";
-  box.classList.toggle("unanswered", Boolean(advice && !withdrawn && words.alert && !advice.acknowledged));
+  box.classList.toggle("unanswered", Boolean(advice && !withdrawn && words.alert && !answerOf(advice, station)));
   setShape($("shape"), words.shape);
   setText($("marker"), words.marker);
   setText($("words"), words.words + ".");
@@ -64,17 +64,19 @@ function showFacts(advice, found) {
 function showAnswer(advice, withdrawn) {
   const words = advice ? adviceWords(advice.advice) : null;
   const asks = Boolean(words && words.alert && !withdrawn);
-  const button = $("acknowledge");
-  button.hidden = !asks || advice.acknowledged;
+  const button = $("acknowledge"), mine = asks ? answerOf(advice, station) : null;
+  button.hidden = !asks || Boolean(mine);
   button.disabled = asks && sending === advice.id;
   let text = problem;
-  if (asks && advice.acknowledged) text = "Acknowledged by " + (advice.acknowledged_by || "?") + (advice.answer ? " (" + advice.answer + ")" : "") + ".";
+  if (mine) text = "Acknowledged by " + (mine.person || "?") + (mine.answer ? " (" + mine.answer + ")" : "") + " at " + utc(mine.time_s) + " UTC.";
+  else if (asks && !problem && advice.acknowledgements.length)
+    text = advice.acknowledgements.map((answer) => answer.station).join(", ") + " acknowledged; " + station + " has not yet.";
   setText($("answered"), text);
 }
 
 function sounds(advice, withdrawn, found) {
   const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
-  const wants = words && words.alert && !advice.acknowledged;
+  const wants = words && words.alert && !answerOf(advice, station); // another station's answer silences that station alone
   alertSound.set(wants ? advice.id + advice.advice : "", words ? (words.level === "stop" ? "stop" : words.level === "hold" ? "hold" : "go") : "go");
   faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
 }

@@ -1,7 +1,7 @@
 // The observer's page: distance first, what was heard, what is allowed, what the source does, how well we hear.
 import {
   $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, plainWords, remains, remembered,
-  remember, sentence, setShape, setText, span, startPalette, startSound, utc, watchNow,
+  remember, sentence, setShape, setText, span, startPalette, startSound, stationAnswers, utc, watchNow,
 } from "/page.js";
 import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
@@ -41,11 +41,16 @@ function drawAdvice(advice, withdrawn) {
 }
 
 function drawCrew(state) {
-  const crew = adviceFor(state, "crew");
+  const crew = adviceFor(state, "crew"), asks = Boolean(crew && adviceWords(crew.advice).alert);
   const countdown = state.contacts.filter((c) => c.state === "open" && c.countdown_ends_s !== null && c.countdown_ends_s > watchNow());
-  let text = crew ? crew.advice + ": " + (crew.acknowledged ? "acknowledged by " + crew.acknowledged_by + " (" + crew.answer + ")" : adviceWords(crew.advice).alert ? "NOT ACKNOWLEDGED" : "shown") : "nothing shown";
-  if (countdown.length) text += "; contact " + countdown[0].contact + " goes to the crew in " + span(countdown[0].countdown_ends_s - watchNow());
-  setText($("crew"), text);
+  const lines = [{ key: "advice", text: crew ? crew.advice + (asks ? "" : ", shown") : "nothing shown" }];
+  for (const { station, answer } of asks ? stationAnswers(state, site, crew) : [])
+    lines.push({ key: "at " + station, missing: !answer, text: station + ": " + (answer ? `acknowledged by ${answer.person} (${answer.answer}) ${utc(answer.time_s)}` : "NOT ACKNOWLEDGED") });
+  if (countdown.length) lines.push({ key: "countdown", text: "contact " + countdown[0].contact + " goes to the crew in " + span(countdown[0].countdown_ends_s - watchNow()) });
+  keyed($("crew"), lines, (line) => line.key, () => el("span"), (node, line) => {
+    setText(node, line.text);
+    node.classList.toggle("missing", Boolean(line.missing));
+  });
 }
 
 function drawPhase(state) {
@@ -124,7 +129,9 @@ function sounds(state, advice, withdrawn, found) {
   verdictSound.set(asked.map((contact) => contact.contact).join(), "hold");
   const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
   const crew = adviceFor(state, "crew");
-  const wants = words && words.alert && !(crew && crew.acknowledged);
+  const stations = stationAnswers(state, site, crew); // every one with somebody on watch has answered, and at least one
+  const answered = stations.some((s) => s.answer) && stations.every((s) => s.answer || !s.manned);
+  const wants = words && words.alert && !answered;
   alertSound.set(wants ? advice.id : "", words && words.level === "stop" ? "stop" : words && words.level === "hold" ? "hold" : "go", !words || words.level === "go" || advice.advice === "do not start");
   faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
 }

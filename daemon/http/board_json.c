@@ -136,6 +136,26 @@ static bool is_recorded(const struct hearing_view *hearing, const char *id)
     return true;
 }
 
+_Static_assert(WATCH_MAX_ACKNOWLEDGEMENTS >= SITE_MAX_STATIONS, "each station's answer has a place");
+
+/* One a crew station: each answers for itself. */
+static void acknowledgements(struct text *text, const struct watch_advice *shown)
+{
+    json_name(text, "acknowledgements");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < shown->n_acknowledgements; i++) {
+        const struct watch_acknowledgement *answer = &shown->acknowledgements[i];
+        json_next(text);
+        text_append(text, "{");
+        json_text(text, "station", answer->station);
+        json_text(text, "person", answer->person);
+        json_text(text, "answer", answer->answer);
+        json_time(text, "time_s", answer->known_ns);
+        text_append(text, "}");
+    }
+    text_append(text, "]");
+}
+
 static void one_advice(struct text *text, const struct watch_advice *shown, bool recorded)
 {
     const struct advice_outcome *advice = &shown->advice;
@@ -155,6 +175,7 @@ static void one_advice(struct text *text, const struct watch_advice *shown, bool
     json_flag(text, "acknowledged", shown->acknowledged);
     json_text(text, "acknowledged_by", shown->acknowledged_by);
     json_text(text, "answer", shown->answer);
+    acknowledgements(text, shown);
     json_name(text, "causes");
     text_append(text, "[");
     for (uint32_t i = 0; i < advice->n_causes; i++) {

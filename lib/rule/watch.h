@@ -17,7 +17,7 @@
 #define WATCH_MAX_CONTACTS 64
 #define WATCH_MAX_ADVICE 32
 #define WATCH_MAX_STREAMS 8
-#define WATCH_MAX_ACKNOWLEDGEMENTS 6 /* of one advice: a station's newest replaces its former */
+#define WATCH_MAX_ACKNOWLEDGEMENTS 10 /* of one advice: a station's newest replaces its former */
 
 struct watch_setup {
     const struct permit *permit; /* borrowed for the life of the watch */

@@ -58,6 +58,11 @@ static void fill(struct watch_view *watch, struct hearing_view *hearing)
                                              .id = "3.0.advice.1",
                                              .in_force = true};
     snprintf(watch->advice[0].advice.station, NOTE_NAME_SIZE, "crew");
+    watch->advice[0].n_acknowledgements = 2;
+    watch->advice[0].acknowledgements[0] = (struct watch_acknowledgement){
+        .station = "hammer cab", .person = "Bo Sand", .answer = "seen", .known_ns = 88 * TIME_NS_PER_S};
+    watch->advice[0].acknowledgements[1] = (struct watch_acknowledgement){
+        .station = "bridge", .person = "Cy Reef", .answer = "declined", .known_ns = 89 * TIME_NS_PER_S};
     snprintf(watch->advice[0].advice.reason, FLOW_TEXT_SIZE, "<script>alert(1)</script> \xc3\xa9 \xff \"");
     snprintf(watch->advice[0].advice.causes[0], FLOW_ID_SIZE, "3.0.contact.7");
     hearing->recording = true;
@@ -90,6 +95,12 @@ static void a_snapshot_says_what_the_views_say(void **state)
     assert_true(json_is_null(json_object_get(advice, "until_s")));
     assert_string_equal(json_string_value(json_object_get(advice, "reason")),
                         "<script>alert(1)</script> \xc3\xa9 \xef\xbf\xbd \"");
+    json_t *answers = json_object_get(advice, "acknowledgements"), *second = json_array_get(answers, 1);
+    assert_int_equal(json_array_size(answers), 2);
+    assert_string_equal(json_string_value(json_object_get(second, "station")), "bridge");
+    assert_string_equal(json_string_value(json_object_get(second, "person")), "Cy Reef");
+    assert_string_equal(json_string_value(json_object_get(second, "answer")), "declined");
+    assert_near(json_number_value(json_object_get(second, "time_s")), 89, 0);
     json_t *contact = json_array_get(json_object_get(root, "contacts"), 0);
     assert_int_equal(json_integer_value(json_object_get(contact, "contact")), 7);
     assert_true(json_is_null(json_object_get(contact, "distance_p50_m")));
