@@ -31,7 +31,11 @@ const struct schema_object views_schema[] = {
         COLUMN("permit") COLUMN("title") COLUMN("document") COLUMN("year") COLUMN("demonstration")
         COLUMN("sha256") COLUMN("text") ", json_extract(body, '$.values') AS \"values\""),
     VIEW("job", COLUMN("job") COLUMN("state") COLUMN("causes")),
-    VIEW("source", COLUMN("source") COLUMN("state") COLUMN("said_by") COLUMN("heard") COLUMN("causes")),
+    VIEW("source",
+        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("n_impulses") COLUMN("range_m") COLUMN("sel_db")
+        COLUMN("peak_db") COLUMN("at_750_m_db") COLUMN("at_750_m_low_db") COLUMN("at_750_m_high_db")
+        COLUMN("back_db") COLUMN("back_low_db") COLUMN("back_high_db") COLUMN("model") COLUMN("n_db")
+        COLUMN("reason")),
     VIEW("call",
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
@@ -61,8 +65,10 @@ const struct schema_object views_schema[] = {
      INNER("research", "adjusted_sel_db")
      " FROM entry, json_each(body, '$.start_s') AS second WHERE kind = 'level'"},
     VIEW("exposure",
-        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criterion") COLUMN_GROUP COLUMN("n_impulses")
-        COLUMN("sel_db") COLUMN("start_s") COLUMN("end_s")),
+        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criteria") COLUMN("criterion") COLUMN("metric")
+        COLUMN("weighting") COLUMN("window") COLUMN("reference") COLUMN("value_db") COLUMN("level_db")
+        COLUMN("at_750_m_db") COLUMN("distance_m") COLUMN("distance_low_m") COLUMN("distance_high_m")
+        COLUMN("n") COLUMN("reached") COLUMN("impulses_left") COLUMN("start_s") COLUMN("unverified")),
     VIEW("contact",
         COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
         COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN("bearing_deg")
