@@ -5,6 +5,7 @@
 
 #include "call/tones_trace.h"
 #include "dsp/background.h"
+#include "dsp/lanes.h"
 #include "dsp/spectrum.h"
 #include <string.h>
 
@@ -18,7 +19,7 @@
 #define MAX_PATHS 48
 #define NO_PATH (-1)
 #define STEP_START INT8_MIN
-#define TILE 4     /* cells that are worked on at once */
+#define TILE LANES /* cells that are worked on at once */
 #define MAX_STEP 8 /* bins that a path may move in a frame */
 
 struct path {
@@ -61,8 +62,9 @@ struct tracer {
 
     uint64_t frame;                                   /* number of the newest frame plus 1 */
     float *level, *floor, *smooth, *occupancy, *gain; /* [stride] */
-    float *tail;        /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
-    float *best, *step; /* [n_bins] of the recursion */
+    float *tail;   /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
+    float *best;   /* [stride] of the recursion: the best score that leads to each cell ... */
+    int32_t *step; /* ... and how far it comes, or STEP_START */
     struct cells now, before;
     struct path paths[MAX_PATHS];
 
@@ -71,38 +73,6 @@ struct tracer {
     float *history_power, *history_snr;
     uint32_t *trail; /* [n_history]: bins of the path being traced back, the last first */
 };
-
-/* Four floats that the compiler keeps in one register (an extension of GCC and Clang): comparisons keep a
- * plain loop from becoming one. */
-typedef float four __attribute__((vector_size(16)));
-typedef int32_t four_masks __attribute__((vector_size(16)));
-
-static inline four load(const float *from)
-{
-    four out;
-    memcpy(&out, from, sizeof out);
-    return out;
-}
-
-static inline void store(float *to, four from)
-{
-    memcpy(to, &from, sizeof from);
-}
-
-static inline four choose(four_masks mask, four yes, four no)
-{
-    return (four)((mask & (four_masks)yes) | (~mask & (four_masks)no));
-}
-
-static inline four all(float x)
-{
-    return (four){x, x, x, x};
-}
-
-static inline four larger(four a, four b)
-{
-    return choose(a > b, a, b);
-}
 
 static inline uint32_t tracer_row(const struct tracer *tracer, uint64_t frame)
 {

@@ -12,26 +12,28 @@
 #define GAP_COST 12.0F   /* fall of the score that ends a path: a gap of about 8 frames */
 #define SLOPE_GAIN 0.35F /* how fast the slope follows */
 
+typedef int8_t tile_bytes __attribute__((vector_size(TILE)));
+
 /* For four cells from k on the best path that leads to each; 0 where it is better to begin there. */
-static void find_best(struct tracer *tracer, uint32_t k)
+static inline void find_best(struct tracer *tracer, uint32_t k, int8_t *out_steps)
 {
-    const four most = all(STEP_COST_MOST), least = all(STEP_COST), per_bin = all(STEP_COST_BIN);
-    four best = all(0), chosen = all(STEP_START);
+    const lanes most = lanes_all(STEP_COST_MOST), least = lanes_all(STEP_COST),
+                per_bin = lanes_all(STEP_COST_BIN);
+    lanes best = lanes_all(0), chosen = lanes_all(STEP_START);
     for (int d = -(int)tracer->max_step; d <= (int)tracer->max_step; d++) {
-        const four score = load(tracer->before.score + (int)(MAX_STEP + k) - d);
-        const four slope = load(tracer->before.slope + (int)(MAX_STEP + k) - d);
-        const four step = all((float)d);
-        four off = step - slope;
-        off = choose(off < all(0), -off, off);
-        four cost = least + per_bin * off;
-        cost = choose(cost < most, cost, most);
-        four candidate = score - cost;
-        four_masks better = candidate > best;
-        chosen = choose(better, step, chosen);
-        best = choose(better, candidate, best);
+        const lanes score = lanes_load(tracer->before.score + (int)(MAX_STEP + k) - d);
+        const lanes slope = lanes_load(tracer->before.slope + (int)(MAX_STEP + k) - d);
+        const lanes step = lanes_all((float)d);
+        const lanes cost = lanes_least(least + per_bin * lanes_size(step - slope), most);
+        const lanes candidate = score - cost;
+        chosen = lanes_choose(candidate > best, step, chosen);
+        best = lanes_greatest(candidate, best);
     }
-    memcpy(tracer->best + k, &best, sizeof best);
-    memcpy(tracer->step + k, &chosen, sizeof chosen);
+    const lane_mask steps = __builtin_convertvector(chosen, lane_mask);
+    const tile_bytes history = __builtin_convertvector(steps, tile_bytes);
+    lanes_store(tracer->best + k, best);
+    memcpy(tracer->step + k, &steps, sizeof steps);
+    memcpy(out_steps + k, &history, sizeof history);
 }
 
 /* The cell begins a path, or goes on from the one that the best path comes from. */
@@ -60,7 +62,7 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float pow
 static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
 {
     const uint32_t at = k + MAX_STEP;
-    const int step = (int)tracer->step[k];
+    const int step = tracer->step[k];
     const float power = tracer->power[tracer->first_bin + k];
     if (step == STEP_START) {
         begin_cell(tracer, at, power);
@@ -83,12 +85,10 @@ static void step_cells(struct tracer *tracer)
     float *scores = tracer->now.score + MAX_STEP;
     int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
-        find_best(tracer, k);
-        const four best = load(tracer->best + k);
-        const four score = choose(best < all(ceiling), best, all(ceiling)) + load(tracer->gain + k);
-        store(scores + k, larger(score, all(0)));
-        for (uint32_t j = k; j < k + TILE; j++)
-            steps[j] = (int8_t)tracer->step[j];
+        find_best(tracer, k, steps);
+        const lanes best = lanes_load(tracer->best + k);
+        const lanes score = lanes_least(best, lanes_all(ceiling)) + lanes_load(tracer->gain + k);
+        lanes_store(scores + k, lanes_greatest(score, lanes_all(0)));
     }
     for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
         scores[k] = 0; /* beyond the band nothing runs */
@@ -99,15 +99,27 @@ static void step_cells(struct tracer *tracer)
             step_cell(tracer, k, ceiling);
 }
 
+/* Whether no path runs in the next four cells. */
+static bool has_no_path(const int16_t paths[TILE])
+{
+    uint64_t four;
+    memcpy(&four, paths, sizeof four);
+    return four == UINT64_MAX;
+}
+
 static void find_tips(struct tracer *tracer)
 {
     for (uint32_t i = 0; i < MAX_PATHS; i++)
         tracer->paths[i].tip = 0;
+    const int16_t *paths = tracer->now.path + MAX_STEP;
     for (uint32_t k = 0; k < tracer->n_bins; k++) {
-        int16_t at = tracer->now.path[k + MAX_STEP];
-        if (at == NO_PATH)
+        if (k % TILE == 0 && has_no_path(paths + k)) {
+            k += TILE - 1;
             continue;
-        struct path *path = &tracer->paths[at];
+        }
+        if (paths[k] == NO_PATH)
+            continue;
+        struct path *path = &tracer->paths[paths[k]];
         if (tracer->now.score[k + MAX_STEP] > path->tip) {
             path->tip = tracer->now.score[k + MAX_STEP];
             path->tip_bin = k;
@@ -196,8 +208,13 @@ static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink
 static void open_paths(struct tracer *tracer, const struct trace_sink *sink)
 {
     const float *score = tracer->now.score;
+    const lanes threshold = lanes_all((float)tracer->setup.threshold);
     for (uint32_t k = 0; k < tracer->n_bins; k++) {
         const uint32_t at = k + MAX_STEP;
+        if (k % TILE == 0 && !lanes_any(lanes_load(score + at) >= threshold)) {
+            k += TILE - 1;
+            continue;
+        }
         if (tracer->now.path[at] == NO_PATH && score[at] >= (float)tracer->setup.threshold &&
             score[at] >= score[at - 1] && score[at] > score[at + 1])
             open_path(tracer, k, sink);

@@ -77,10 +77,11 @@ static bool make_arrays(struct tracer *tracer)
 {
     size_t k = tracer->stride, history = tracer->n_history;
     float **const of_bins[] = {&tracer->level, &tracer->floor, &tracer->smooth, &tracer->occupancy,
-                               &tracer->gain,  &tracer->tail,  &tracer->best,   &tracer->step};
+                               &tracer->gain,  &tracer->tail,  &tracer->best};
     bool good = true;
     for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
         good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
+    good = (tracer->step = calloc(k, sizeof *tracer->step)) && good;
     good = make_cells(&tracer->now, k + 2 * MAX_STEP) && good;
     good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
     good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
@@ -146,18 +147,17 @@ void tracer_destroy(struct tracer *tracer)
  * whose crest is 1.25 times the level that is taken here (mean size of the samples, as of Gaussian noise). */
 static void limit_transients(const float *in, float *out, uint32_t n)
 {
-    const four_masks sign = {INT32_MIN, INT32_MIN, INT32_MIN, INT32_MIN};
-    four sizes = all(0);
+    lanes sizes = lanes_all(0);
     uint32_t i = 0;
     for (; i + TILE <= n; i += TILE)
-        sizes += (four)((four_masks)load(in + i) & ~sign);
-    double sum = (double)sizes[0] + sizes[1] + ((double)sizes[2] + sizes[3]);
+        sizes += lanes_size(lanes_load(in + i));
+    double sum = lanes_sum(sizes);
     for (; i < n; i++)
         sum += fabsf(in[i]);
     const float scale = (float)(1 / (TRANSIENT_LIMIT * 1.2533 * sum / n + 1e-30));
     for (i = 0; i + TILE <= n; i += TILE) {
-        const four x = load(in + i), ratio = x * scale, square = ratio * ratio;
-        store(out + i, x / (1 + square * square * square));
+        const lanes x = lanes_load(in + i), ratio = x * scale, square = ratio * ratio;
+        lanes_store(out + i, x / (1 + square * square * square));
     }
     for (; i < n; i++) {
         const float ratio = in[i] * scale, square = ratio * ratio;
@@ -166,11 +166,11 @@ static void limit_transients(const float *in, float *out, uint32_t n)
 }
 
 /* The highest power within three bins of four cells. */
-static four loudest_near(const float *power)
+static lanes loudest_near(const float *power)
 {
-    four loudest = load(power - NEAR);
+    lanes loudest = lanes_load(power - NEAR);
     for (int d = -NEAR + 1; d <= NEAR; d++)
-        loudest = larger(loudest, load(power + d));
+        loudest = lanes_greatest(loudest, lanes_load(power + d));
     return loudest;
 }
 
@@ -178,25 +178,27 @@ static four loudest_near(const float *power)
  * cell far below one beside it holds only what leaks from that. */
 static void weigh_cells(struct tracer *tracer)
 {
-    const four slope = all(DESIGN_SNR / (1 + DESIGN_SNR)), offset = all(logf(1 + DESIGN_SNR));
-    const four remember = all((float)(1 / (OCCUPANCY_S * tracer->frame_rate)));
+    const lanes slope = lanes_all(DESIGN_SNR / (1 + DESIGN_SNR)), offset = lanes_all(logf(1 + DESIGN_SNR));
+    const lanes remember = lanes_all((float)(1 / (OCCUPANCY_S * tracer->frame_rate)));
     float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
-        const four power = load(tracer->power + tracer->first_bin + k);
-        const four leak = all(LEAK_SHARE) * loudest_near(tracer->power + tracer->first_bin + k);
-        const four level = load(tracer->level + k), snr = power / level;
-        four occupancy = load(tracer->occupancy + k), smooth = load(tracer->smooth + k);
-        four floor = load(tracer->floor + k);
-        four gain = slope * power / larger(level, floor) - offset;
-        gain = choose(gain > all(MAX_GAIN), all(MAX_GAIN), gain);
-        gain = choose((power < leak) & (gain > all(FLANK_GAIN)), all(FLANK_GAIN), gain);
-        store(tracer->gain + k, gain);
-        store(snrs + k, snr);
-        occupancy += (choose(snr > all(OCCUPANCY_SNR), all(1), all(0)) - occupancy) * remember;
-        store(tracer->occupancy + k, occupancy);
-        smooth += (power - smooth) * all(SMOOTHING);
-        store(tracer->smooth + k, smooth);
-        store(tracer->floor + k, larger(smooth * load(tracer->tail + k), floor * all(tracer->tail_fall)));
+        const lanes power = lanes_load(tracer->power + tracer->first_bin + k);
+        const lanes leak = lanes_all(LEAK_SHARE) * loudest_near(tracer->power + tracer->first_bin + k);
+        const lanes level = lanes_load(tracer->level + k), snr = power / level;
+        lanes occupancy = lanes_load(tracer->occupancy + k), smooth = lanes_load(tracer->smooth + k);
+        lanes floor = lanes_load(tracer->floor + k);
+        lanes gain = slope * power / lanes_greatest(level, floor) - offset;
+        gain = lanes_least(gain, lanes_all(MAX_GAIN));
+        gain = lanes_choose((power < leak) & (gain > lanes_all(FLANK_GAIN)), lanes_all(FLANK_GAIN), gain);
+        lanes_store(tracer->gain + k, gain);
+        lanes_store(snrs + k, snr);
+        occupancy +=
+            (lanes_choose(snr > lanes_all(OCCUPANCY_SNR), lanes_all(1), lanes_all(0)) - occupancy) * remember;
+        lanes_store(tracer->occupancy + k, occupancy);
+        smooth += (power - smooth) * lanes_all(SMOOTHING);
+        lanes_store(tracer->smooth + k, smooth);
+        lanes_store(tracer->floor + k, lanes_greatest(smooth * lanes_load(tracer->tail + k),
+                                                      floor * lanes_all(tracer->tail_fall)));
     }
 }
 

@@ -179,14 +179,14 @@ static void run_half_band(const struct stage *stage, const float *even, const fl
                           float *out)
 {
     const uint32_t n_taps = stage->n_taps;
-    const lanes middle = {0.5F, 0.5F, 0.5F, 0.5F};
+    const lanes middle = lanes_all(0.5F);
     uint32_t i = 0;
     for (; i + TILE <= n; i += TILE) {
         lanes first = middle * lanes_load(odd + i), second = middle * lanes_load(odd + i + LANES);
         const float *early = even + i + n_taps - 1, *late = even + i + n_taps;
         for (uint32_t k = 0; k < n_taps; k++, early--, late++) {
             const float t = stage->taps[k];
-            const lanes tap = {t, t, t, t};
+            const lanes tap = lanes_all(t);
             first += tap * (lanes_load(early) + lanes_load(late));
             second += tap * (lanes_load(early + LANES) + lanes_load(late + LANES));
         }

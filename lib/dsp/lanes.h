@@ -6,6 +6,9 @@
 
 #include <stdint.h>
 #include <string.h>
+#ifdef __SSE4_1__
+#include <smmintrin.h>
+#endif
 
 #define LANES 4u
 
@@ -25,17 +28,54 @@ static inline void lanes_store(float *to, lanes x)
     memcpy(to, &x, sizeof x);
 }
 
+static inline lanes lanes_all(float x)
+{
+    return (lanes){x, x, x, x};
+}
+
+/* Where the processor has one instruction for it, compilers do not find it by themselves; the results are the
+ * same. */
+static inline lanes lanes_choose(lane_mask mask, lanes yes, lanes no)
+{
+#ifdef __SSE4_1__
+    return (lanes)_mm_blendv_ps((__m128)no, (__m128)yes, (__m128)mask);
+#else
+    return (lanes)((mask & (lane_mask)yes) | (~mask & (lane_mask)no));
+#endif
+}
+
 /* The smaller and the greater of each pair; b where either is NAN. */
 static inline lanes lanes_least(lanes a, lanes b)
 {
-    lane_mask mask = a < b;
-    return (lanes)((mask & (lane_mask)a) | (~mask & (lane_mask)b));
+#ifdef __SSE4_1__
+    return (lanes)_mm_min_ps((__m128)a, (__m128)b);
+#else
+    return lanes_choose(a < b, a, b);
+#endif
 }
 
 static inline lanes lanes_greatest(lanes a, lanes b)
 {
-    lane_mask mask = a > b;
-    return (lanes)((mask & (lane_mask)a) | (~mask & (lane_mask)b));
+#ifdef __SSE4_1__
+    return (lanes)_mm_max_ps((__m128)a, (__m128)b);
+#else
+    return lanes_choose(a > b, a, b);
+#endif
+}
+
+/* Without its sign. */
+static inline lanes lanes_size(lanes x)
+{
+    const lane_mask sign = {INT32_MIN, INT32_MIN, INT32_MIN, INT32_MIN};
+    return (lanes)((lane_mask)x & ~sign);
+}
+
+/* Whether any lane of a comparison is true. */
+static inline int lanes_any(lane_mask mask)
+{
+    uint64_t halves[2];
+    memcpy(halves, &mask, sizeof halves);
+    return (halves[0] | halves[1]) != 0;
 }
 
 static inline double lanes_sum(lanes x)

@@ -105,8 +105,8 @@ struct four_bins {
 };
 
 /* The same of bins k .. k + 3, those of `high` the last first. */
-static void take_four_apart(const struct spectrum *spectrum, uint32_t k, struct four_bins *low,
-                            struct four_bins *high)
+static inline void take_four_apart(const struct spectrum *spectrum, uint32_t k, struct four_bins *low,
+                                   struct four_bins *high)
 {
     const float *a = spectrum->halves + 2 * k, *b = spectrum->halves + spectrum->n - 2 * (k + 3);
     const lanes a0 = lanes_load(a), a1 = lanes_load(a + LANES), b0 = lanes_load(b),
