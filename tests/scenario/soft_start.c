@@ -43,7 +43,7 @@ static void make_scene(struct scene *scene, double length)
     scene_reset(scene);
     scene->seed = SEED;
     scene->rate_hz = RATE;
-    scene->duration_s = 1530 * length;
+    scene->duration_s = 1500 * length + 10;
     scene->sea.ambient = true;
     scene->sea.wind_m_s = 6;
     scene->sea.shipping = 0.5;
