@@ -22,6 +22,7 @@
 #include "record/minute.h"
 #include "rule/watch.h"
 #include "scene/render.h"
+#include "sea/fit.h"
 #include "settings/catalogue.h"
 #include "settings/criteria.h"
 #include "settings/permit.h"
@@ -203,6 +204,7 @@ CASE(exposure, exposure_create(&(struct exposure_setup){.n_criteria = criteria.n
                                                         .reference_m = 750,
                                                         .loss = {.n_db = 15}},
                                &made))
+CASE(fit, fit_create(100, 0, &made))
 CASE(render, render_create(&scene.scene, &made))
 
 #define LINE(object)                                                                                         \
@@ -213,13 +215,14 @@ static const struct create_case cases[] = {
     LINE(decimator),      LINE(spectrum), LINE(background), LINE(meter),    LINE(health),
     LINE(impulse_finder), LINE(tones),    LINE(pulses),     LINE(gate),     LINE(blocks),
     LINE(strips),         LINE(listen),   LINE(watch),      LINE(minutes),  LINE(merge),
-    LINE(watcher),        LINE(board),    LINE(render),     LINE(exposure),
+    LINE(watcher),        LINE(board),    LINE(render),     LINE(exposure), LINE(fit),
 };
 
 static void fail_each_allocation(const struct create_case *one)
 {
     void *const untouched = (void *)cases;
-    for (long n = 1;; n++) {
+    /* A short run takes every seventh of the later ones: under a sanitizer each costs many times more. */
+    for (long n = 1;; n += test_length() == TEST_SHORT && n > 50 ? 7 : 1) {
         void *object = untouched;
         allocations = 0;
         fail_at = n;
