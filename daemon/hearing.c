@@ -99,8 +99,38 @@ static void take_impulse(struct hearing_view *hearing, const struct outcome *out
     flow_id(outcome->run, outcome->stream, "impulse", outcome->counter, hearing->impulses[0].id);
 }
 
+static void take_exposure(struct hearing_view *hearing, const struct exposure_outcome *exposure)
+{
+    uint32_t i = 0;
+    while (i < hearing->n_exposures && (hearing->exposures[i].stream != exposure->stream ||
+                                        strcmp(hearing->exposures[i].set, exposure->set) != 0 ||
+                                        strcmp(hearing->exposures[i].criterion, exposure->criterion) != 0))
+        i++;
+    if (i == BOARD_MAX_EXPOSURES)
+        return;
+    hearing->exposures[i] = *exposure;
+    if (i == hearing->n_exposures)
+        hearing->n_exposures++;
+}
+
+static void take_source(struct hearing_view *hearing, const struct source_outcome *source)
+{
+    uint32_t i = 0;
+    while (i < hearing->n_sources && hearing->sources[i].stream != source->stream)
+        i++;
+    if (i == BOARD_MAX_SOURCES)
+        return;
+    hearing->sources[i] = *source;
+    if (i == hearing->n_sources)
+        hearing->n_sources++;
+}
+
 void hearing_take(struct hearing_view *hearing, const struct outcome *outcome)
 {
+    if (outcome->kind == OUTCOME_EXPOSURE)
+        take_exposure(hearing, &outcome->as.exposure);
+    if (outcome->kind == OUTCOME_SOURCE)
+        take_source(hearing, &outcome->as.source);
     if (outcome->kind != OUTCOME_EVENT)
         return;
     const struct event *event = &outcome->as.event;

@@ -9,6 +9,7 @@
 #include "base/status.h"
 #include "flow.h"
 #include "http/columns.h"
+#include "listen/listen.h"
 #include "rule/permit.h"
 #include "rule/watch.h"
 #include "settings/site.h"
@@ -20,6 +21,8 @@
 #define BOARD_MAX_IMPULSES 40
 #define BOARD_MAX_UNHEARD 40
 #define BOARD_MAX_FAULTS 8
+#define BOARD_MAX_EXPOSURES 64
+#define BOARD_MAX_SOURCES SITE_MAX_STREAMS
 #define BOARD_MAX_UNRECORDED 8
 #define BOARD_MAX_LEVELS (SITE_MAX_STREAMS * FLOW_MAX_CHANNELS)
 #define BOARD_LINE_SIZE 192
@@ -45,7 +48,9 @@ struct hearing_stream {
     int64_t heard_ns;             /* watch time up to which the stream has been heard */
     double block_age_s;           /* since the last block arrived; NAN where none has */
     double unheard_s;             /* unheard time of this run so far */
-    double masked_s; /* time of this run in which the own source covered some band */
+    double masked_s;              /* time of this run in which the own source covered some band */
+    uint32_t n_accounts;          /* one a class of the catalogue */
+    struct class_account accounts[CATALOGUE_MAX_CLASSES];
 };
 
 struct hearing_level {
@@ -70,7 +75,7 @@ struct hearing_unheard {
     struct unheard unheard;
 };
 
-/* What the daemon knows beside the watch. Lists are newest first. About 100 kB: not for the stack. */
+/* What the daemon knows beside the watch. Lists are newest first. About 200 kB: not for the stack. */
 struct hearing_view {
     int64_t unix_at_zero_ns; /* UTC of watch time 0 by the clock map in force */
     uint32_t n_streams;
@@ -83,6 +88,10 @@ struct hearing_view {
     struct hearing_impulse impulses[BOARD_MAX_IMPULSES];
     uint32_t n_unheard;
     struct hearing_unheard unheard[BOARD_MAX_UNHEARD];
+    uint32_t n_exposures; /* the last word on each criterion */
+    struct exposure_outcome exposures[BOARD_MAX_EXPOSURES];
+    uint32_t n_sources; /* the last of each stream */
+    struct source_outcome sources[BOARD_MAX_SOURCES];
     bool recording;                       /* false: entries are not reaching the disk */
     char recording_text[BOARD_LINE_SIZE]; /* why not, in words; empty while it records */
     int64_t committed_seq;                /* last committed entry; 0 where none is */

@@ -4,6 +4,28 @@
 #include "http/board_json.h"
 #include <math.h>
 
+/* Of each class what was found, and by name how much was rejected: only counts above 0. */
+static void accounts(struct text *text, const struct hearing_stream *stream)
+{
+    json_name(text, "classes");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < stream->n_accounts; i++) {
+        const struct class_account *account = &stream->accounts[i];
+        json_next(text);
+        text_append(text, "{");
+        json_text(text, "class", account->name);
+        json_flag(text, "hearable", account->hearable);
+        json_number(text, "found", (double)account->n_found, 0);
+        json_name(text, "rejected");
+        text_append(text, "{");
+        for (unsigned r = 0; r < REJECT_COUNT; r++)
+            if (account->rejected[r] > 0)
+                json_number(text, rejection_text((enum rejection)r), (double)account->rejected[r], 0);
+        text_append(text, "}}");
+    }
+    text_append(text, "]");
+}
+
 static void streams(struct text *text, const struct hearing_view *hearing)
 {
     json_name(text, "streams");
@@ -23,6 +45,7 @@ static void streams(struct text *text, const struct hearing_view *hearing)
         json_number(text, "block_age_s", stream->block_age_s, 3);
         json_number(text, "unheard_s", stream->unheard_s, 3);
         json_number(text, "masked_s", stream->masked_s, 3);
+        accounts(text, stream);
         text_append(text, "}");
     }
     text_append(text, "]");
@@ -159,6 +182,7 @@ void board_json_hearing(struct text *text, const struct hearing_view *hearing)
     levels(text, hearing);
     sounds(text, hearing);
     unheard_time(text, hearing);
+    board_json_sums(text, hearing);
     json_name(text, "recording");
     text_append(text, "{");
     json_flag(text, "recording", hearing->recording);

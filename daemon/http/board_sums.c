@@ -1,0 +1,65 @@
+/* The board's text of what the source's sound adds up to: exposure against each criterion, the source's three
+ * numbers. */
+#include "base/round.h"
+#include "http/board_json.h"
+
+static void exposure(struct text *text, const struct exposure_outcome *exposure)
+{
+    json_next(text);
+    text_append(text, "{");
+    json_number(text, "stream", exposure->stream, 0);
+    json_number(text, "channel", exposure->channel, 0);
+    json_text(text, "job", exposure->job);
+    json_text(text, "criteria", exposure->set);
+    json_text(text, "criterion", exposure->criterion);
+    json_text(text, "metric", exposure->metric);
+    json_text(text, "weighting", exposure->weighting);
+    json_text(text, "window", exposure->window);
+    json_text(text, "reference", exposure->reference);
+    json_number(text, "value_db", exposure->value_db, ROUND_DECIMALS_DB);
+    json_number(text, "level_db", exposure->level_db, ROUND_DECIMALS_DB);
+    json_number(text, "at_750_m_db", exposure->at_750_m_db, ROUND_DECIMALS_DB);
+    json_number(text, "distance_m", exposure->distance_m, ROUND_DECIMALS_M);
+    json_number(text, "distance_low_m", exposure->distance_low_m, ROUND_DECIMALS_M);
+    json_number(text, "distance_high_m", exposure->distance_high_m, ROUND_DECIMALS_M);
+    json_number(text, "n", exposure->n, 0);
+    json_flag(text, "reached", exposure->reached);
+    json_number(text, "impulses_left", exposure->left, 0);
+    json_flag(text, "unverified", exposure->unverified);
+    text_append(text, "}");
+}
+
+static void source(struct text *text, const struct source_outcome *source)
+{
+    json_next(text);
+    text_append(text, "{");
+    json_number(text, "stream", source->stream, 0);
+    json_number(text, "channel", source->channel, 0);
+    json_text(text, "job", source->job);
+    json_number(text, "n_impulses", source->n_impulses, 0);
+    json_number(text, "range_m", source->range_m, ROUND_DECIMALS_M);
+    json_number(text, "sel_db", source->sel_db, ROUND_DECIMALS_DB);
+    json_number(text, "peak_db", source->peak_db, ROUND_DECIMALS_DB);
+    json_number(text, "at_750_m_db", source->at_750_m_db, ROUND_DECIMALS_DB);
+    json_number(text, "at_750_m_low_db", source->at_750_m_low_db, ROUND_DECIMALS_DB);
+    json_number(text, "at_750_m_high_db", source->at_750_m_high_db, ROUND_DECIMALS_DB);
+    json_number(text, "back_db", source->back_db, ROUND_DECIMALS_DB);
+    json_text(text, "model", source->model);
+    json_number(text, "n_db", source->n_db, ROUND_DECIMALS_DB);
+    json_text(text, "reason", source->reason);
+    text_append(text, "}");
+}
+
+void board_json_sums(struct text *text, const struct hearing_view *hearing)
+{
+    json_name(text, "exposures");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < hearing->n_exposures; i++)
+        exposure(text, &hearing->exposures[i]);
+    text_append(text, "]");
+    json_name(text, "sources");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < hearing->n_sources; i++)
+        source(text, &hearing->sources[i]);
+    text_append(text, "]");
+}
