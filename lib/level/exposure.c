@@ -303,7 +303,7 @@ void exposure_of_impulse(const struct impulse *impulse, uint32_t n_bands, const 
                                    .spl_db = impulse->rms90_db,
                                    .peak_db = impulse->peak_db,
                                    .peak_to_peak_db = impulse->peak_to_peak_db,
-                                   .positive_impulse_pa_s = NAN,
+                                   .positive_impulse_pa_s = impulse->positive_impulse_pa_s,
                                    .n_bands = band_sel_db ? n_bands : 0,
                                    .relative = impulse->relative,
                                    .clipped = impulse->clipped};

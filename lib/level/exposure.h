@@ -132,7 +132,8 @@ void exposure_begin_job(struct exposure *exposure);
  * n_bands or continuous seconds (0 to 60) out of range. Times may run back by up to 24 h. */
 enum status exposure_push(struct exposure *exposure, const struct exposure_sound *sound);
 
-/* Sounds from what entries hold. band_sel_db: SEL of decidecades, NULL for none. */
+/* Sounds from what entries hold. band_sel_db: SEL of decidecades, NULL for none; impulse->band_sel_db where
+ * it has them. A refused impulse has no levels and is then refused by push. */
 void exposure_of_impulse(const struct impulse *impulse, uint32_t n_bands, const double *band_sel_db,
                          double range_m, struct exposure_sound *out);
 void exposure_of_level(const struct level *level, double range_m, struct exposure_sound *out);

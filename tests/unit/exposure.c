@@ -608,6 +608,44 @@ static void what_is_not_known_is_not_said(void **state)
     exposure_destroy(exposure);
 }
 
+/* An impulse and a level say the same as the sound made from them; one that was refused is not summed. */
+static void sounds_of_entries(void **state)
+{
+    (void)state;
+    struct criterion c = cumulative("NMFS 2024 VHF", ACCUMULATE_JOB, 159);
+    struct exposure_setup setup = setup_of(&c, 1);
+    struct exposure *exposure = make(&setup);
+    struct exposure_sound sound = blow(SECOND, 750, 171), of_impulse, of_level;
+    give_bands(&sound, 0);
+    struct impulse impulse = {.time_ns = SECOND,
+                              .sel_db = 171,
+                              .peak_db = 193,
+                              .peak_to_peak_db = 198,
+                              .rms90_db = 181.5,
+                              .t90_s = 0.08,
+                              .positive_impulse_pa_s = 2,
+                              .n_bands = N_BANDS};
+    memcpy(impulse.band_sel_db, sound.band_sel_db, sizeof impulse.band_sel_db);
+    exposure_of_impulse(&impulse, impulse.n_bands, impulse.band_sel_db, 750, &of_impulse);
+    sound.positive_impulse_pa_s = 2;
+    assert_memory_equal(&of_impulse, &sound, offsetof(struct exposure_sound, relative));
+    impulse.sel_db = NAN;
+    exposure_of_impulse(&impulse, impulse.n_bands, impulse.band_sel_db, 750, &of_impulse);
+    assert_int_equal(exposure_push(exposure, &of_impulse), STATUS_OUT_OF_RANGE);
+    /* Half a second at 174.0103 dB has the SEL of 171 dB. */
+    struct level level = {.start_ns = SECOND, .seconds = 0.5, .spl_db = 174.0103, .n_bands = N_BANDS};
+    for (int b = 0; b < N_BANDS; b++)
+        level.band_db[b] = sound.band_sel_db[b] + 3.0103;
+    exposure_of_level(&level, 750, &of_level);
+    assert_near(of_level.sel_db, 171, 1e-4);
+    push(exposure, &of_level);
+    double of_level_db = state_of(exposure, 0, 0).level_db;
+    exposure_reset(exposure);
+    push(exposure, &sound);
+    assert_near(of_level_db, state_of(exposure, 0, 0).level_db, 1e-4);
+    exposure_destroy(exposure);
+}
+
 static void a_setup_that_makes_no_sense_is_refused(void **state)
 {
     (void)state;
@@ -652,6 +690,7 @@ int main(void)
         cmocka_unit_test(losses_by_frequency),
         cmocka_unit_test(single_impulses),
         cmocka_unit_test(what_is_not_known_is_not_said),
+        cmocka_unit_test(sounds_of_entries),
         cmocka_unit_test(a_setup_that_makes_no_sense_is_refused),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
