@@ -1,20 +1,19 @@
 /* Band-pass bank and slot powers. */
 #include "call/bands.h"
 #include "dsp/filter.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define LANES 4
 #define SECTIONS 3
 #define WINDOW_POINTS 96
+#define SPARE_BLOCKS 16       /* for which a row has room before its history is moved to its front */
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
 
 /* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
  * level (with which they grow, as Rice's formula has it); measured in white noise. */
 #define UPCROSSINGS 0.65
-
-typedef float lanes __attribute__((vector_size(16)));
 
 struct group {
     lanes gain, a1[SECTIONS], a2[SECTIONS];
@@ -24,10 +23,11 @@ struct group {
 
 struct bands {
     uint32_t n, n_groups, slot_frames, block_slots, history_slots;
+    uint32_t stride, at;              /* of the rows of power, and where in them the last block begins */
     struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
     double delay[BANDS_MAX];
     struct group groups[BANDS_MAX / LANES];
-    float *power; /* [n_groups * LANES][history_slots + block_slots] */
+    float *power; /* [n_groups * LANES][stride] */
 };
 
 bool bands_rate_carries(double rate_hz, struct band_edges edges)
@@ -141,8 +141,9 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->n_groups = (n + LANES - 1) / LANES;
     bands->slot_frames = slot_frames;
     bands->block_slots = block_slots;
-    bands->history_slots = history_slots;
-    bands->power = calloc((size_t)bands->n_groups * LANES * (history_slots + block_slots), sizeof(float));
+    bands->history_slots = bands->at = history_slots;
+    bands->stride = history_slots + SPARE_BLOCKS * block_slots;
+    bands->power = calloc((size_t)bands->n_groups * LANES * bands->stride, sizeof(float));
     if (!bands->power) {
         bands_destroy(bands);
         return STATUS_NO_MEMORY;
@@ -165,8 +166,7 @@ void bands_reset(struct bands *bands)
         memset(group->y2, 0, sizeof group->y2);
         group->x1 = group->x2 = 0;
     }
-    memset(bands->power, 0,
-           sizeof(float) * bands->n_groups * LANES * (bands->history_slots + bands->block_slots));
+    memset(bands->power, 0, sizeof(float) * bands->n_groups * LANES * bands->stride);
 }
 
 /* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
@@ -179,7 +179,7 @@ static inline lanes section(lanes difference, lanes a1, lanes a2, lanes y1, lane
 static void filter_group(struct bands *bands, struct group *group, const float *x, float *out)
 {
     struct group g = *group;
-    size_t stride = bands->history_slots + bands->block_slots;
+    const size_t stride = bands->stride;
     const float scale = 1.0F / (float)bands->slot_frames;
     for (uint32_t slot = 0; slot < bands->block_slots; slot++) {
         lanes sum = {0};
@@ -205,18 +205,28 @@ static void filter_group(struct bands *bands, struct group *group, const float *
     *group = g;
 }
 
+/* Makes room in the rows for the next block. */
+static void next_place(struct bands *bands)
+{
+    bands->at += bands->block_slots;
+    if (bands->at + bands->block_slots <= bands->stride)
+        return;
+    for (uint32_t b = 0; b < bands->n_groups * LANES; b++) {
+        float *row = bands->power + (size_t)b * bands->stride;
+        memmove(row, row + bands->at - bands->history_slots, bands->history_slots * sizeof *row);
+    }
+    bands->at = bands->history_slots;
+}
+
 void bands_push(struct bands *bands, const float *samples)
 {
-    size_t stride = bands->history_slots + bands->block_slots;
     bool finite = true;
+    next_place(bands);
     for (uint32_t g = 0; g < bands->n_groups; g++) {
-        float *rows = bands->power + g * LANES * stride;
+        float *block = bands->power + (size_t)g * LANES * bands->stride + bands->at;
+        filter_group(bands, &bands->groups[g], samples, block);
         for (uint32_t l = 0; l < LANES; l++)
-            memmove(rows + l * stride, rows + l * stride + bands->block_slots,
-                    bands->history_slots * sizeof(float));
-        filter_group(bands, &bands->groups[g], samples, rows + bands->history_slots);
-        for (uint32_t l = 0; l < LANES; l++)
-            finite = finite && isfinite(rows[l * stride + stride - 1]);
+            finite = finite && isfinite(block[l * bands->stride + bands->block_slots - 1]);
     }
     if (!finite)
         bands_reset(bands);
@@ -224,8 +234,7 @@ void bands_push(struct bands *bands, const float *samples)
 
 const float *bands_get_power(const struct bands *bands, uint32_t b)
 {
-    size_t stride = bands->history_slots + bands->block_slots;
-    return bands->power + b * stride + bands->history_slots;
+    return bands->power + (size_t)b * bands->stride + bands->at;
 }
 
 double bands_get_delay(const struct bands *bands, uint32_t b)
