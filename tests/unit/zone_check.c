@@ -3,6 +3,7 @@
 
 #include "base/random.h"
 #include "level/zone_check.h"
+#include "sea/loss.h"
 #include <math.h>
 
 static const struct zone_limit sel = {METRIC_SEL_SINGLE, 160, 750, 0.05}, peak = {METRIC_PEAK, 190, 750, 0};
@@ -151,6 +152,27 @@ static void a_trend_is_continued(void **state)
     assert_in_range(held, 871, 929); /* 90 % -+ 3 standard deviations */
 }
 
+/* Levels at 10 to 1000 m, each twice: least squares has A = 205.107784 and N = 15.022632, rms residual
+ * 0.199661 with 3 degrees of freedom, 160 dB at 1006.1327 m (normal equations worked out apart). */
+static void a_trend_is_least_squares(void **state)
+{
+    (void)state;
+    static const double range_m[] = {10, 30, 100, 300, 1000},
+                        level_db[] = {190.1, 183.0, 174.8, 168.1, 160.0};
+    struct trend trend = {0};
+    struct trend_forecast forecast;
+    for (int i = 0; i < 10; i++)
+        trend_push(&trend, log10(range_m[i / 2]), level_db[i / 2]);
+    assert_int_equal(trend_get(&trend, 0, &forecast), STATUS_OK);
+    assert_near(forecast.slope, -15.022632, 1e-6);
+    assert_near(forecast.db, 205.107784, 1e-6);
+    assert_near(forecast.scatter_db, 0.199661 * sqrt(2 * 3 / 8.0), 1e-6);
+    struct loss law = {.law = LOSS_POWER, .n_db = -forecast.slope};
+    double range;
+    assert_int_equal(loss_source_range_m(&law, forecast.db, 160, &range), STATUS_OK);
+    assert_near(range, 1006.1327, 1e-3);
+}
+
 /* Soft start of 1 dB a dB of energy: heading for 163 or 157 dB at full energy against 160. */
 static void a_soft_start_warns_early(void **state)
 {
@@ -185,6 +207,7 @@ int main(void)
         cmocka_unit_test(only_a_channel_in_its_place_measures),
         cmocka_unit_test(distances_are_held_against_the_zone),
         cmocka_unit_test(a_trend_is_continued),
+        cmocka_unit_test(a_trend_is_least_squares),
         cmocka_unit_test(a_soft_start_warns_early),
     };
     return cmocka_run_group_tests_name("zone_check", tests, NULL, NULL);
