@@ -90,6 +90,28 @@ static void take_call(struct hearing_view *hearing, const struct outcome *outcom
     flow_id(outcome->run, outcome->stream, "call", outcome->counter, hearing->calls[0].id);
 }
 
+/* The soft start's curve: the loudest impulse of ours in each step. */
+static void take_curve(struct hearing_view *hearing, const struct impulse *impulse)
+{
+    int64_t step = impulse->time_ns / (BOARD_CURVE_STEP_S * TIME_NS_PER_S);
+    uint32_t n = hearing->n_curve;
+    if (impulse->whose != IMPULSE_OURS || impulse->relative || !(impulse->sel_db > -1000))
+        return;
+    if (n > 0 && hearing->curve_step[n - 1] == step) {
+        if ((float)impulse->sel_db > hearing->curve_sel_db[n - 1])
+            hearing->curve_sel_db[n - 1] = (float)impulse->sel_db;
+        return;
+    }
+    if (n == BOARD_CURVE_STEPS) {
+        n--;
+        memmove(hearing->curve_step, hearing->curve_step + 1, n * sizeof hearing->curve_step[0]);
+        memmove(hearing->curve_sel_db, hearing->curve_sel_db + 1, n * sizeof hearing->curve_sel_db[0]);
+    }
+    hearing->curve_step[n] = step;
+    hearing->curve_sel_db[n] = (float)impulse->sel_db;
+    hearing->n_curve = n + 1;
+}
+
 static void take_impulse(struct hearing_view *hearing, const struct outcome *outcome,
                          const struct event *event)
 {
@@ -97,6 +119,7 @@ static void take_impulse(struct hearing_view *hearing, const struct outcome *out
         push_front(hearing->impulses, hearing->n_impulses, BOARD_MAX_IMPULSES, sizeof hearing->impulses[0]);
     hearing->impulses[0] = (struct hearing_impulse){.stream = event->stream, .impulse = event->as.impulse};
     flow_id(outcome->run, outcome->stream, "impulse", outcome->counter, hearing->impulses[0].id);
+    take_curve(hearing, &event->as.impulse);
 }
 
 static void take_exposure(struct hearing_view *hearing, const struct exposure_outcome *exposure)

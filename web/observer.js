@@ -7,6 +7,7 @@ import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
 import { drawLadder } from "/ladder.js";
 import { startStrips } from "/strips.js";
+import { drawSums } from "/sums.js";
 
 const alertSound = new Alarm(20);
 const verdictSound = new Alarm(10);
@@ -101,6 +102,7 @@ function drawSource(state) {
 }
 
 function drawHearing(state) {
+  drawSums(state);
   keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
     node.classList.toggle("bad", !stream.hearing);
     setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));
@@ -112,6 +114,20 @@ function drawHearing(state) {
   const gaps = deaf.length ? deaf.slice(0, 5) : [null];
   keyed($("unheard"), gaps, (gap) => gap && [gap.stream, gap.channel, gap.start_s, gap.cause].join(), () => el("li"), (node, gap) =>
     setText(node, !gap ? "None." : `${utc(gap.start_s)} UTC, ${(gap.end_s - gap.start_s).toFixed(1)} s: ${gap.cause}, ${gap.channel ? "channel " + gap.stream + "." + gap.channel : "all of stream " + gap.stream}`));
+}
+
+/** Why sounds were not calls: of each class what was found, what was rejected, or that the rate cannot carry it. */
+function drawExplanation(state) {
+  if (!$("explain").open) return;
+  const rows = state.streams.flatMap((stream) => (stream.classes || []).map((account) => ({ stream, account })));
+  keyed($("classes"), rows.length ? rows : [null], (row) => row && row.stream.stream + row.account.class, () => el("li", {}, el("b"), el("span")), (node, row) => {
+    setText(node.firstChild, row ? row.account.class + (state.streams.length > 1 ? " on " + row.stream.name : "") : "");
+    if (!row) return setText(node.lastChild, "Nothing is known yet.");
+    const why = Object.entries(row.account.rejected).sort((a, b) => b[1] - a[1]).map(([name, n]) => name + " " + n.toLocaleString("en"));
+    node.classList.toggle("soft", !row.account.hearable);
+    setText(node.lastChild, row.account.hearable ? `: ${row.account.found} found; ` + (why.length ? "rejected: " + why.join(", ") : "nothing else came near") + "."
+      : `: cannot be heard at ${row.stream.rate_hz / 1000} kHz.`);
+  });
 }
 
 function drawPermit() {
@@ -152,6 +168,7 @@ function draw() {
   drawPeople(state);
   drawSource(state);
   drawHearing(state);
+  drawExplanation(state);
   sounds(state, advice, withdrawn, found);
 }
 

@@ -23,6 +23,8 @@
 #define BOARD_MAX_FAULTS 8
 #define BOARD_MAX_EXPOSURES 64
 #define BOARD_MAX_SOURCES SITE_MAX_STREAMS
+#define BOARD_CURVE_STEPS 360 /* an hour */
+#define BOARD_CURVE_STEP_S 10
 #define BOARD_MAX_UNRECORDED 8
 #define BOARD_MAX_LEVELS (SITE_MAX_STREAMS * FLOW_MAX_CHANNELS)
 #define BOARD_LINE_SIZE 192
@@ -88,6 +90,9 @@ struct hearing_view {
     struct hearing_impulse impulses[BOARD_MAX_IMPULSES];
     uint32_t n_unheard;
     struct hearing_unheard unheard[BOARD_MAX_UNHEARD];
+    uint32_t n_curve; /* the loudest of our impulses in each step of the last hour, oldest first */
+    int64_t curve_step[BOARD_CURVE_STEPS]; /* watch time / BOARD_CURVE_STEP_S */
+    float curve_sel_db[BOARD_CURVE_STEPS];
     uint32_t n_exposures; /* the last word on each criterion */
     struct exposure_outcome exposures[BOARD_MAX_EXPOSURES];
     uint32_t n_sources; /* the last of each stream */

@@ -23,7 +23,7 @@ void board_json_watch(struct text *text, const struct watch_view *watch);
 /* "streams", "levels", "calls", "impulses", "unheard", "recording", "faults". */
 void board_json_hearing(struct text *text, const struct hearing_view *hearing);
 
-/* "exposures", "sources": what the source's sound adds up to. */
+/* "curve", "exposures", "sources": what the source's sound adds up to. */
 void board_json_sums(struct text *text, const struct hearing_view *hearing);
 
 #endif

@@ -52,6 +52,12 @@ static void source(struct text *text, const struct source_outcome *source)
 
 void board_json_sums(struct text *text, const struct hearing_view *hearing)
 {
+    json_name(text, "curve");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < hearing->n_curve; i++)
+        text_format(text, "%s[%lld,%.1f]", i ? "," : "",
+                    (long long)hearing->curve_step[i] * BOARD_CURVE_STEP_S, (double)hearing->curve_sel_db[i]);
+    text_append(text, "]");
     json_name(text, "exposures");
     text_append(text, "[");
     for (uint32_t i = 0; i < hearing->n_exposures; i++)

@@ -15,6 +15,15 @@ from watch import BUILD, ROOT, ask, check, figure, finish, folder, settings, ver
 STALL, UNPLUG = (20.0, 24.0), (34.0, 39.0)
 
 
+def preloaded(place):
+    """The fault injector; a sanitizer's own library must come before it."""
+    for name in ("asan", "tsan"):
+        if os.path.basename(BUILD) == name:
+            found = subprocess.run(["gcc", "-print-file-name=lib%s.so" % name], capture_output=True, text=True)
+            return found.stdout.strip() + ":" + place + "/block_watch.so"
+    return place + "/block_watch.so"
+
+
 def sound_device(place):
     """An ALSA configuration with one device, and the environment that makes it the only one."""
     with open(place + "/asound.conf", "w") as out:
@@ -24,7 +33,7 @@ def sound_device(place):
                   (place, STALL[0], STALL[1], UNPLUG[0], UNPLUG[1]))
     return {"ALSA_CONFIG_PATH": "/usr/share/alsa/alsa.conf:%s/asound.conf" % place, "JACK_NO_START_SERVER": "1",
             "PULSE_SERVER": "unix:/nonexistent", "HUSHWATCH_BLOCK": place + "/block",
-            "LD_PRELOAD": place + "/block_watch.so"}
+            "LD_PRELOAD": preloaded(place)}
 
 
 def device_s(place):
