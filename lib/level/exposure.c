@@ -93,12 +93,7 @@ enum status exposure_set_loss(struct exposure *exposure, const struct exposure_l
     if (bad_loss(loss))
         return STATUS_BAD_ARGUMENT;
     exposure->loss = *loss;
-    for (uint32_t k = 0; k < TABLE_N; k++)
-        for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++) {
-            double spread_db, range_m = pow(10, (double)k / TABLE_A_DECADE);
-            exposure->table[k * LEVEL_MAX_BANDS + b] = units_power_ratio(
-                -exposure_between_db(exposure, b, exposure->reference_m, range_m, &spread_db));
-        }
+    exposure->table_ready = false;
     return STATUS_OK;
 }
 

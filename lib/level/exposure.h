@@ -52,7 +52,7 @@
 struct exposure_loss {
     void (*between)(void *context, double frequency_hz, double from_m, double to_m, double *out_db,
                     double *out_spread_db); /* NULL: n_db lg(to / from) */
-    void *context;                          /* borrowed until the next set_loss */
+    void *context;                          /* borrowed; when what it says has changed, call set_loss again */
     double n_db, n_spread_db;               /* dB a decade of range */
 };
 

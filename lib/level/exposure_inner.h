@@ -51,7 +51,8 @@ struct exposure {
     int64_t day_start_ns;
     struct exposure_loss loss;
     double centre_hz[LEVEL_MAX_BANDS];
-    double *table; /* [TABLE_N * LEVEL_MAX_BANDS], owned */
+    double *table; /* [TABLE_N * LEVEL_MAX_BANDS], owned; filled for the first receiver that flees */
+    bool table_ready;
 
     struct buckets received_ring, placed_ring; /* placed: at the reference */
     struct buckets placed_job;

@@ -181,6 +181,17 @@ static double distance_m(const struct question *q)
     return sqrt(near_m * far_m);
 }
 
+static void fill_table(struct exposure *exposure)
+{
+    for (uint32_t k = 0; k < TABLE_N; k++)
+        for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++) {
+            double spread_db, range_m = pow(10, (double)k / TABLE_A_DECADE);
+            exposure->table[k * LEVEL_MAX_BANDS + b] = units_power_ratio(
+                -exposure_between_db(exposure, b, exposure->reference_m, range_m, &spread_db));
+        }
+    exposure->table_ready = true;
+}
+
 /* Whether the question has an answer. */
 static enum status check(struct exposure *exposure, uint32_t criterion, double range_m, double flee_m_s,
                          int64_t now_ns, struct question *out)
@@ -193,6 +204,8 @@ static enum status check(struct exposure *exposure, uint32_t criterion, double r
     *out = (struct question){exposure, item, flee_m_s, now_ns, 0};
     if (!criterion_applies(c, exposure->sound) || c->metric == METRIC_POSITIVE_IMPULSE)
         return STATUS_NOT_FOUND;
+    if (flee_m_s > 0 && !exposure->table_ready)
+        fill_table(exposure);
     if (c->metric != METRIC_SEL_CUMULATIVE)
         return isfinite(item->loudest.placed_db) ? STATUS_OK : STATUS_NOT_FOUND;
     const struct bucket *sum = exposure_sum(exposure, c->window, true, now_ns);
