@@ -1,5 +1,6 @@
-/* Fuzzes the settings files: site, permit, call class and scene loaders take any bytes and say what is wrong.
- */
+/* Fuzzes the settings files: site, permit, scene, notes and criteria loaders take any bytes and say what is
+ * wrong. */
+#include "settings/criteria.h"
 #include "settings/notes.h"
 #include "settings/permit.h"
 #include "settings/scene.h"
@@ -28,7 +29,11 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         pwrite(file, data + 1, size - 1, 0) != (ssize_t)size - 1)
         return 0;
     struct problems problems = {0};
-    if (data[0] % 4 == 0) {
+    if (data[0] == 'c') {
+        static struct criteria criteria;
+        criteria.n = criteria.n_sets = 0;
+        criteria_load(path, &problems, NULL, &criteria);
+    } else if (data[0] % 4 == 0) {
         site_load(path, &problems, &site);
         site_destroy(&site);
     } else if (data[0] % 4 == 1)
