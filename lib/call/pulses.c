@@ -9,13 +9,16 @@
 #include <string.h>
 
 #define SLOTS_PER_PULSE                                                                                      \
-    6                      /* of the shortest pulse of a stage: costs less than 0.1 dB against every sample  \
-                            */
-#define BLOCK_SLOTS 64     /* at the full rate */
-#define SLOW_BLOCK_SLOTS 8 /* on a decimated copy, where a slot is long */
-#define DECIMATE_BELOW 50  /* a class runs decimated when its highest edge is below rate / 50 ... */
-#define DECIMATED_RATE 5   /* ... at a rate of at least 5 times that edge */
-#define PIECE_FRAMES 1024  /* pushed to a decimator at a time */
+    6                  /* of the shortest pulse of a stage: costs less than 0.1 dB against every sample      \
+                        */
+#define BLOCK_SLOTS 64 /* looked at together, where they last no longer ... */
+#define LONGEST_BLOCK_S 0.01 /* ... than this; else: */
+#define SLOW_BLOCK_SLOTS 8
+/* A class runs decimated when its highest edge is at most rate / 16, at a rate of at least 4.8 times that
+ * edge. Above 320 kHz that leaves four bands at the full rate, as many as one vector of filters holds. */
+#define DECIMATE_BELOW 16
+#define DECIMATED_RATE 4.8
+#define PIECE_FRAMES 1024 /* pushed to a decimator at a time */
 #define MAX_STAGES 8
 
 /* Classes that run at one rate. */
@@ -127,7 +130,8 @@ static enum status add_ear(struct pulses *pulses, const struct call_class *call_
 static enum status create_stage(struct pulses *pulses, uint32_t index)
 {
     struct stage *stage = &pulses->stages[index];
-    stage->block_slots = stage->factor == 1 ? BLOCK_SLOTS : SLOW_BLOCK_SLOTS;
+    const double block_s = BLOCK_SLOTS * stage->slot_frames / stage->rate_hz;
+    stage->block_slots = block_s <= LONGEST_BLOCK_S ? BLOCK_SLOTS : SLOW_BLOCK_SLOTS;
     stage->block_frames = stage->block_slots * stage->slot_frames;
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         if (pulses->ears[e].stage != index)
