@@ -40,8 +40,11 @@ struct stream {
     pthread_t thread;
     bool running;
     atomic_bool stop;
-    pthread_mutex_t lock; /* guards state */
+    int64_t accounts_ns;  /* monotonic time at which the accounts were last looked at */
+    pthread_mutex_t lock; /* guards what follows */
     struct stream_state state;
+    uint32_t n_accounts;
+    struct class_account accounts[CATALOGUE_MAX_CLASSES];
 };
 
 enum status stream_open(const struct stream_setup *setup, struct problems *problems, struct stream **out)
@@ -152,6 +155,13 @@ static void keep_pace(const struct stream *stream, uint32_t n_frames)
     clock_wait_until_ns(stream->start_monotonic_ns + (int64_t)(played_s * 1e9));
 }
 
+static void note_accounts(struct stream *stream)
+{
+    pthread_mutex_lock(&stream->lock);
+    stream->n_accounts = listen_get_accounts(stream->listen, stream->accounts);
+    pthread_mutex_unlock(&stream->lock);
+}
+
 static void note_state(struct stream *stream, const struct input_piece *piece)
 {
     char health[sizeof stream->state.health] = "";
@@ -169,6 +179,11 @@ static void note_state(struct stream *stream, const struct input_piece *piece)
     state->cpu_s = (double)cpu.tv_sec + (double)cpu.tv_nsec * 1e-9;
     memcpy(state->health, health, sizeof health);
     pthread_mutex_unlock(&stream->lock);
+    int64_t now_ns = clock_monotonic_ns();
+    if (now_ns - stream->accounts_ns >= TIME_NS_PER_S) {
+        stream->accounts_ns = now_ns;
+        note_accounts(stream);
+    }
 }
 
 static enum status take_piece(struct stream *stream, uint32_t max_frames)
@@ -229,6 +244,7 @@ static void *run_stream(void *context)
         go_on_without(stream);
     blocks_finish(stream->blocks, &blocks);
     listen_finish(stream->listen, &events);
+    note_accounts(stream);
     merge_progress(stream->merge, stream->setup.number, listen_get_time(stream->listen));
     merge_end(stream->merge, stream->setup.number);
     return NULL;
@@ -304,4 +320,13 @@ void stream_get_state(struct stream *stream, struct stream_state *out)
     pthread_mutex_lock(&stream->lock);
     *out = stream->state;
     pthread_mutex_unlock(&stream->lock);
+}
+
+uint32_t stream_get_accounts(struct stream *stream, struct class_account out[CATALOGUE_MAX_CLASSES])
+{
+    pthread_mutex_lock(&stream->lock);
+    uint32_t n = stream->n_accounts;
+    memcpy(out, stream->accounts, n * sizeof out[0]);
+    pthread_mutex_unlock(&stream->lock);
+    return n;
 }

@@ -18,7 +18,7 @@
 
 struct watcher {
     struct watcher_setup setup;
-    struct hearing_view *hearing; /* 100 kB, and read by nobody else */
+    struct hearing_view *hearing; /* 200 kB, and read by nobody else */
     struct watch_view *view;
     unsigned next_note;
     uint64_t note_counter;
@@ -158,6 +158,7 @@ static void look_at_stream(struct watcher *watcher, uint32_t i, int64_t watch_ns
     bool was_hearing = shown->hearing;
     shown->heard_ns = state.heard_ns;
     shown->block_age_s = age_s;
+    shown->n_accounts = stream_get_accounts(stream, shown->accounts);
     shown->hearing = !state.ended && state.last_sound_ns && age_s < STALE_S;
     snprintf(shown->health, sizeof shown->health, "%s",
              *state.health ? state.health

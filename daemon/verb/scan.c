@@ -12,7 +12,7 @@
 
 static const char help[] =
     "usage: hushwatch scan --config FILE --ledger OUT [--start UTC] [--notes FILE] [--pace real|fast] "
-    "[RECORDING...]\n\n"
+    "[--explain] [RECORDING...]\n\n"
     "Listens to the recordings, one after the other as one stream, with the first stream's channels of the "
     "settings,\n"
     "applies the permit and writes the ledger OUT, which must not exist. Without recordings it listens to "
@@ -22,12 +22,15 @@ static const char help[] =
     "the time of\n"
     "                 the file's last change less its duration. The `run` entry says which\n"
     "  --notes FILE   what people entered, at_s seconds from the first frame (docs/scenes.md)\n"
-    "  --pace WORD    fast (as fast as possible, the default) or real\n\n"
+    "  --pace WORD    fast (as fast as possible, the default) or real\n"
+    "  --explain      at the end, why sounds were not calls: of each class of the call catalogue what was "
+    "found and\n"
+    "                 what was rejected, by name, and which classes the recording's rate cannot carry\n\n"
     "Exit code: 0 good, 2 wrong use or settings, 3 the system failed.\n";
 
 struct scan {
     const char *config, *ledger, *notes_path, *start;
-    bool real_pace;
+    bool real_pace, explain;
     char **recordings;
     int n_recordings;
     struct site site;
@@ -52,13 +55,11 @@ static int wrong_use(const char *what, const char *value)
 
 static int read_options(int argc, char **argv, struct scan *scan)
 {
-    static const struct option options[] = {{"config", required_argument, NULL, 'c'},
-                                            {"ledger", required_argument, NULL, 'l'},
-                                            {"start", required_argument, NULL, 's'},
-                                            {"notes", required_argument, NULL, 'n'},
-                                            {"pace", required_argument, NULL, 'p'},
-                                            {"help", no_argument, NULL, 'h'},
-                                            {NULL, 0, NULL, 0}};
+    static const struct option options[] = {
+        {"config", required_argument, NULL, 'c'}, {"ledger", required_argument, NULL, 'l'},
+        {"start", required_argument, NULL, 's'},  {"notes", required_argument, NULL, 'n'},
+        {"pace", required_argument, NULL, 'p'},   {"explain", no_argument, NULL, 'e'},
+        {"help", no_argument, NULL, 'h'},         {NULL, 0, NULL, 0}};
     int option;
     opterr = 0;
     while ((option = getopt_long(argc, argv, "", options, NULL)) != -1) {
@@ -74,6 +75,8 @@ static int read_options(int argc, char **argv, struct scan *scan)
             scan->notes_path = optarg;
         else if (option == 's')
             scan->start = optarg;
+        else if (option == 'e')
+            scan->explain = true;
         else if (option == 'p' && (strcmp(optarg, "real") == 0 || strcmp(optarg, "fast") == 0))
             scan->real_pace = strcmp(optarg, "real") == 0;
         else if (option == 'p')
@@ -146,6 +149,39 @@ static enum status listen_to_all(struct chain *chain)
     return watcher.status;
 }
 
+static void explain_class(const struct class_account *account)
+{
+    if (!account->hearable) {
+        printf("  %-28s %10s  cannot be heard at this rate\n", account->name, "-");
+        return;
+    }
+    printf("  %-28s %10llu  ", account->name, (unsigned long long)account->n_found);
+    const char *between = "";
+    for (unsigned r = 0; r < REJECT_COUNT; r++) {
+        if (account->rejected[r] == 0)
+            continue;
+        printf("%s%s %llu", between, rejection_text((enum rejection)r),
+               (unsigned long long)account->rejected[r]);
+        between = ", ";
+    }
+    printf("%s\n", *between ? "" : "nothing came near");
+}
+
+/* Why sounds were not calls. After the streams have ended. */
+static void explain(struct chain *chain)
+{
+    struct class_account accounts[CATALOGUE_MAX_CLASSES];
+    for (uint32_t i = 1; i <= chain_count_streams(chain); i++) {
+        struct stream *stream = chain_get_stream(chain, i);
+        uint32_t n = stream_get_accounts(stream, accounts);
+        printf("stream %u, %.0f Hz: a sound is rejected by each class and on each channel that looks at it\n"
+               "  %-28s %10s  %s\n",
+               i, stream_get_facts(stream)->rate_hz, "class", "found", "rejected, and why");
+        for (uint32_t c = 0; c < n; c++)
+            explain_class(&accounts[c]);
+    }
+}
+
 static int exit_of(enum status status)
 {
     switch (status) {
@@ -188,8 +224,11 @@ static int run_chain(struct scan *scan, struct problems *problems)
         fprintf(stderr, "hushwatch scan: %s\n", status_text(status));
     if (lost > 0)
         fprintf(stderr, "hushwatch scan: %llu entries could not be written\n", (unsigned long long)lost);
-    if (chain && status == STATUS_OK)
+    if (chain && status == STATUS_OK) {
+        if (scan->explain)
+            explain(chain);
         printf("%s\n", scan->ledger);
+    }
     chain_destroy(chain);
     return lost > 0 ? VERB_SYSTEM : exit_of(status);
 }

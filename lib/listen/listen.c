@@ -25,6 +25,7 @@ struct listen {
     uint32_t impulse_channel;                 /* whose impulses are given; 0: none */
     uint32_t gate_channel;                    /* whose impulses mask what the stream hears; 0: none */
     uint64_t n_hidden[CATALOGUE_MAX_CLASSES]; /* calls that the own source covered */
+    uint64_t n_found[CATALOGUE_MAX_CLASSES];
     struct joiner joiner;
     uint64_t counters[EVENT_NOTE + 1];
     const struct event_sink *sink; /* of the push in progress */
@@ -206,7 +207,10 @@ static void take_joined(void *context, const struct joined_call *joined)
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
     const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
-    if (!class->animal || is_hidden(listen, found))
+    if (class->animal && is_hidden(listen, found))
+        return;
+    listen->n_found[found->class_index]++;
+    if (!class->animal)
         return;
     struct event *event = add_event(listen, EVENT_CALL, found->known_frame);
     struct call *call = &event->as.call;
@@ -398,4 +402,29 @@ void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_M
     }
     for (uint32_t c = 0; c < CATALOGUE_MAX_CLASSES; c++)
         out[c][REJECT_OWN_SOURCE] += listen->n_hidden[c];
+}
+
+static bool can_hear(const struct listen *listen, uint32_t class_index)
+{
+    for (uint32_t i = 0; i < listen->setup.n_channels; i++) {
+        const struct ear *ear = &listen->ears[i];
+        if (ear->listens &&
+            (tones_can_hear(ear->tones, class_index) || pulses_is_hearable(ear->pulses, class_index)))
+            return true;
+    }
+    return false;
+}
+
+uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[CATALOGUE_MAX_CLASSES])
+{
+    const struct catalogue *catalogue = listen->setup.catalogue;
+    uint64_t rejections[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
+    listen_get_rejections(listen, rejections);
+    for (uint32_t c = 0; c < catalogue->n_classes; c++) {
+        memcpy(out[c].name, catalogue->classes[c].name, sizeof out[c].name);
+        out[c].hearable = can_hear(listen, c);
+        out[c].n_found = listen->n_found[c];
+        memcpy(out[c].rejected, rejections[c], sizeof out[c].rejected);
+    }
+    return catalogue->n_classes;
 }

@@ -11,6 +11,7 @@
 #include "call/found.h"
 #include "flow.h"
 #include "level/calibration.h"
+#include <stdbool.h>
 #include <stdint.h>
 
 #define COLUMN_ROWS 24
@@ -66,5 +67,17 @@ void listen_set_map(struct listen *listen, const struct time_map *map);
 
 /* How many candidates each class rejected, by name; out[class_index][rejection]. */
 void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_MAX_CLASSES][REJECT_COUNT]);
+
+/* What became of the sounds that a class looked at, so that "nothing found" can be explained. A sound is
+ * rejected by each class that looks at it and on each channel that listens, and counts as often. */
+struct class_account {
+    char name[CALL_CLASS_SIZE];
+    bool hearable;    /* the rate carries what the class needs, and a channel listens */
+    uint64_t n_found; /* calls given; of a class that is no animal's: sounds counted */
+    uint64_t rejected[REJECT_COUNT];
+};
+
+/* Writes one a class of the catalogue, in its order; returns how many. */
+uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[CATALOGUE_MAX_CLASSES]);
 
 #endif

@@ -63,6 +63,13 @@ def observer_shows(server, observer):
     check(painted == 3, "three strips of sound are painted", painted)
     check("1.2" in observer.text("#levels") and "rel." in observer.text("#levels"), "levels of an uncalibrated channel are marked relative")
     check("3 of 4 values are unverified" in observer.text("#permit_values"), "the permit's unverified values are counted")
+    check(not observer.shown("#classes"), "why sounds were not calls is closed until it is asked for")
+    find(observer, "#explain summary").click()
+    told, _ = observer.until("return document.querySelectorAll('#classes li').length === 3", 3)
+    check(told and "porpoise click train: 2 found; rejected: no rhythm 7,310, too weak 1,204." in observer.text("#classes")
+          and "sonar above the rate: cannot be heard at 384 kHz." in observer.text("#classes"),
+          "it says of each class what was rejected and what cannot be heard", observer.text("#classes"))
+    find(observer, "#explain summary").click()
     check("Acoustic silence does not prove absence" in observer.text("main"), "the cautions are on the page")
     observer.picture("observer-delay-day")
 

@@ -69,6 +69,10 @@ static void fill(struct watch_view *watch, struct hearing_view *hearing)
     hearing->committed_seq = 41;
     hearing->n_unrecorded = 1;
     snprintf(hearing->unrecorded[0], FLOW_ID_SIZE, "3.0.advice.1");
+    hearing->n_streams = 1;
+    hearing->streams[0].n_accounts = 1;
+    hearing->streams[0].accounts[0] = (struct class_account){
+        .name = "whistle", .hearable = true, .n_found = 4, .rejected = {[REJECT_SHAPE] = 9}};
     hearing->n_levels = 1;
     hearing->levels[0].stream = 1;
     hearing->levels[0].level = (struct level){.channel = 2, .spl_db = 100, .n_bands = 12, .relative = true};
@@ -101,6 +105,13 @@ static void a_snapshot_says_what_the_views_say(void **state)
     assert_string_equal(json_string_value(json_object_get(second, "person")), "Cy Reef");
     assert_string_equal(json_string_value(json_object_get(second, "answer")), "declined");
     assert_near(json_number_value(json_object_get(second, "time_s")), 89, 0);
+    json_t *stream = json_array_get(json_object_get(root, "streams"), 0);
+    json_t *account = json_array_get(json_object_get(stream, "classes"), 0);
+    assert_string_equal(json_string_value(json_object_get(account, "class")), "whistle");
+    assert_true(json_is_true(json_object_get(account, "hearable")));
+    assert_int_equal(json_integer_value(json_object_get(account, "found")), 4);
+    assert_int_equal(json_object_size(json_object_get(account, "rejected")), 1);
+    assert_int_equal(json_integer_value(json_object_get(json_object_get(account, "rejected"), "shape")), 9);
     json_t *contact = json_array_get(json_object_get(root, "contacts"), 0);
     assert_int_equal(json_integer_value(json_object_get(contact, "contact")), 7);
     assert_true(json_is_null(json_object_get(contact, "distance_p50_m")));

@@ -39,6 +39,7 @@ struct heard {
     uint32_t n;
     struct event *events;
     uint32_t n_columns;
+    struct class_account account; /* of the one class */
 };
 
 struct playing {
@@ -109,6 +110,9 @@ static struct heard play(const float *frames, uint64_t n, uint32_t channels, boo
     blocks_finish(blocks, &sink);
     const struct event_sink events = {take_event, &playing};
     assert_int_equal(listen_finish(playing.listen, &events), STATUS_OK);
+    struct class_account accounts[CATALOGUE_MAX_CLASSES];
+    assert_int_equal(listen_get_accounts(playing.listen, accounts), 1);
+    heard.account = accounts[0];
     blocks_destroy(blocks);
     listen_destroy(playing.listen);
     return heard;
@@ -198,6 +202,9 @@ static void one_call_on_three_channels_is_one_event(void **state)
     uint32_t calls = count(&heard, EVENT_CALL);
     printf("# figure whistles given: %u of 10, on 3 channels\n", calls);
     assert_true(calls >= 9 && calls <= 11);
+    assert_string_equal(heard.account.name, "whistle");
+    assert_true(heard.account.hearable);
+    assert_int_equal(heard.account.n_found, calls);
     for (uint32_t i = 0; i < heard.n; i++)
         if (heard.events[i].kind == EVENT_CALL) {
             double late_s = (double)(heard.events[i].known_ns - heard.events[i].as.call.end_ns) * 1e-9;
