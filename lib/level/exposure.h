@@ -27,7 +27,7 @@
  * A positive impulse is compared as received and has no distance: it falls otherwise than energy.
  *
  * One object for impulsive sound and one for continuous: they have criteria of their own. Sums are in double
- * precision. Memory does not grow with time (about 9 MiB), and the state is a function of what was pushed:
+ * precision. Memory does not grow with time (about 10 MiB), and the state is a function of what was pushed:
  * pushing the same sounds again, from the entries, rebuilds it.
  *
  * Call order: create; push, begin_job, set_loss and get as they come; destroy. */
