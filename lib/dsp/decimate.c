@@ -8,7 +8,7 @@
 
 #define MAX_STAGES 32
 #define LARGEST_PRIME 13
-#define TILE (2 * LANES)  /* outputs of a half-band stage, or partial sums of another's, made side by side */
+#define TILE (2 * LANES)  /* partial sums of a dot product, made side by side */
 #define PIECE 2048        /* input samples a stage takes at once */
 #define ATTENUATION_DB 90 /* of each stage: leaves 10 dB for the sum of a chain's stages */
 #define PASS_BAND_END 0.4 /* of the output rate */
@@ -173,25 +173,45 @@ static float dot(const float *a, const float *b, uint32_t n)
     return (first[0] + first[1]) + (first[2] + first[3]);
 }
 
+static inline lanes pair(const float *early, const float *late)
+{
+    return lanes_load(early) + lanes_load(late);
+}
+
+/* Outputs 0 to 15 of a half-band stage: four vectors share each tap. */
+static void make_sixteen(const struct stage *stage, const float *even, const float *odd, float *out)
+{
+    const float *early = even + stage->n_taps - 1, *late = even + stage->n_taps;
+    lanes a = 0.5F * lanes_load(odd), b = 0.5F * lanes_load(odd + LANES);
+    lanes c = 0.5F * lanes_load(odd + 2 * LANES), d = 0.5F * lanes_load(odd + 3 * LANES);
+    for (uint32_t k = 0; k < stage->n_taps; k++, early--, late++) {
+        const lanes tap = lanes_all(stage->taps[k]);
+        a += tap * pair(early, late);
+        b += tap * pair(early + LANES, late + LANES);
+        c += tap * pair(early + 2 * LANES, late + 2 * LANES);
+        d += tap * pair(early + 3 * LANES, late + 3 * LANES);
+    }
+    lanes_store(out, a);
+    lanes_store(out + LANES, b);
+    lanes_store(out + 2 * LANES, c);
+    lanes_store(out + 3 * LANES, d);
+}
+
 /* Output i of a half-band stage: even and odd point to the oldest samples that output 0 needs. The order of
  * the sum is the same for every output, alone or in a tile. */
 static void run_half_band(const struct stage *stage, const float *even, const float *odd, uint32_t n,
                           float *out)
 {
     const uint32_t n_taps = stage->n_taps;
-    const lanes middle = lanes_all(0.5F);
     uint32_t i = 0;
-    for (; i + TILE <= n; i += TILE) {
-        lanes first = middle * lanes_load(odd + i), second = middle * lanes_load(odd + i + LANES);
-        const float *early = even + i + n_taps - 1, *late = even + i + n_taps;
-        for (uint32_t k = 0; k < n_taps; k++, early--, late++) {
-            const float t = stage->taps[k];
-            const lanes tap = lanes_all(t);
-            first += tap * (lanes_load(early) + lanes_load(late));
-            second += tap * (lanes_load(early + LANES) + lanes_load(late + LANES));
-        }
-        lanes_store(out + i, first);
-        lanes_store(out + i + LANES, second);
+    for (; i + 4 * LANES <= n; i += 4 * LANES)
+        make_sixteen(stage, even + i, odd + i, out + i);
+    for (; i + LANES <= n; i += LANES) {
+        lanes sum = 0.5F * lanes_load(odd + i);
+        for (uint32_t k = 0; k < n_taps; k++)
+            sum +=
+                stage->taps[k] * (lanes_load(even + i + n_taps - 1 - k) + lanes_load(even + i + n_taps + k));
+        lanes_store(out + i, sum);
     }
     for (; i < n; i++) {
         float sum = 0.5F * odd[i];
