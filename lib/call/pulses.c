@@ -252,10 +252,10 @@ static void take_pulse(void *context, const struct pulse *pulse)
     trains_push(hearing->ear->trains, pulse, &sink, hearing->ear->rejections);
 }
 
-static void search_block(struct pulses *pulses, uint32_t index)
+static void search_block(struct pulses *pulses, uint32_t index, const float *block)
 {
     struct stage *stage = &pulses->stages[index];
-    bands_push(stage->bands, stage->block);
+    bands_push(stage->bands, block);
     stage->n_blocks++;
     pulses->known_frame =
         pulses->first_frame + stage->n_blocks * stage->block_frames * stage->factor - (stage->factor == 1);
@@ -275,6 +275,12 @@ static void fill(struct pulses *pulses, uint32_t index, const float *samples, si
 {
     struct stage *stage = &pulses->stages[index];
     while (n > 0) {
+        if (stage->filled == 0 && n >= stage->block_frames) { /* nothing to wait for, nothing to copy */
+            search_block(pulses, index, samples);
+            samples += stage->block_frames;
+            n -= stage->block_frames;
+            continue;
+        }
         size_t room = stage->block_frames - stage->filled, part = n < room ? n : room;
         memcpy(stage->block + stage->filled, samples, part * sizeof *samples);
         stage->filled += (uint32_t)part;
@@ -282,7 +288,7 @@ static void fill(struct pulses *pulses, uint32_t index, const float *samples, si
         n -= part;
         if (stage->filled == stage->block_frames) {
             stage->filled = 0;
-            search_block(pulses, index);
+            search_block(pulses, index, stage->block);
         }
     }
 }
