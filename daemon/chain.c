@@ -140,10 +140,12 @@ static enum status create_tally(struct chain *chain)
                                   .loss_n_db = site->source.loss_n_db,
                                   .loss_n_spread_db = site->source.loss_n_spread_db,
                                   .level_spread_db = site->source.level_spread_db,
+                                  .scatter_db = site->source.scatter_db,
                                   .zone_edge_m = zone_edge_m(chain->permit)};
     for (uint32_t i = 0; i < chain->n_streams; i++)
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
             const struct channel_settings *channel = &site->streams[i].channels[c];
+            setup->role[i][c] = channel->calibration.role;
             setup->range_m[i][c] =
                 sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
         }

@@ -12,13 +12,16 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     struct group_reader group;
     unsigned form = SOURCE_LINE, sound = SOUND_IMPULSIVE;
     char path[256];
-    *out = (struct source_settings){
-        .loss_n_db = 15, .loss_n_spread_db = SOURCE_ASSUMED_N_SPREAD_DB, .level_spread_db = 1};
+    *out = (struct source_settings){.loss_n_db = 15,
+                                    .loss_n_spread_db = SOURCE_ASSUMED_N_SPREAD_DB,
+                                    .level_spread_db = 1,
+                                    .scatter_db = 1.5};
     group_child(root, "source", READER_OPTIONAL, &group);
     group_word(&group, "form", READER_OPTIONAL, form_words, 3, &form);
     group_word(&group, "sound", READER_OPTIONAL, sound_words, 2, &sound);
     group_number(&group, "loss_n_db", READER_OPTIONAL, 5, 40, &out->loss_n_db);
     group_number(&group, "loss_n_spread_db", READER_OPTIONAL, 0, 10, &out->loss_n_spread_db);
+    group_number(&group, "scatter_db", READER_OPTIONAL, 0, 10, &out->scatter_db);
     group_number(&group, "level_spread_db", READER_OPTIONAL, 0, 10, &out->level_spread_db);
     group_number(&group, "aperture_m", READER_OPTIONAL, 0, 200, &out->shape.aperture_m);
     group_number(&group, "main_hz", READER_OPTIONAL, 0, 1e6, &out->shape.main_hz);

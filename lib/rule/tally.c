@@ -1,6 +1,7 @@
 /* What the source's sound adds up to; see tally.h. */
 #include "rule/tally.h"
 #include "base/time.h"
+#include "rule/tally_limits.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -17,6 +18,9 @@ struct sums {
     float sel_db[KEPT_IMPULSES]; /* of the job, a ring */
     double peak_db;
     bool changed;
+    struct tally_limits limits;
+    enum zone_grade said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */
+    uint64_t n_findings;                /* said in this run */
 };
 
 struct tally {
@@ -50,6 +54,7 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
     enum status status = tally->sums ? STATUS_OK : STATUS_NO_MEMORY;
     for (uint32_t i = 0; i < setup->n_streams && status == STATUS_OK; i++) {
         tally->sums[i].peak_db = -INFINITY;
+        tally_limits_reset(&tally->sums[i].limits, setup->criteria);
         status = exposure_create(&exposure, &tally->sums[i].exposure);
     }
     if (status != STATUS_OK) {
@@ -89,6 +94,13 @@ static void take_impulse(struct tally *tally, uint32_t stream, const struct impu
     sums->sel_db[sums->n_impulses++ % KEPT_IMPULSES] = (float)impulse->sel_db;
     sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
     sums->changed = true;
+    const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
+                                    .range_m = range_of(tally, stream, impulse->channel),
+                                    .loss_n_db = tally->setup.loss_n_db,
+                                    .loss_n_spread_db = tally->setup.loss_n_spread_db,
+                                    .level_spread_db = tally->setup.level_spread_db,
+                                    .scatter_db = tally->setup.scatter_db};
+    tally_limits_push(&sums->limits, impulse, &move);
 }
 
 static void take_level(struct tally *tally, uint32_t stream, const struct level *level)
@@ -113,6 +125,8 @@ static void begin_job(struct tally *tally, const char *job)
         exposure_begin_job(sums->exposure);
         sums->n_impulses = 0;
         sums->peak_db = -INFINITY;
+        tally_limits_begin_job(&sums->limits);
+        memset(sums->said, 0, sizeof sums->said);
     }
 }
 
@@ -174,6 +188,35 @@ static bool fill_exposure(const struct tally *tally, uint32_t i, uint32_t c, int
     return true;
 }
 
+static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
+                        const struct finding_outcome *finding, const struct outcome_sink *sink)
+{
+    struct outcome outcome = {
+        .kind = OUTCOME_FINDING, .run = tally->run, .stream = i + 1, .watch_ns = watch_ns};
+    outcome.counter = ++tally->sums[i].n_findings;
+    outcome.as.finding = *finding;
+    sink->take(sink->context, &outcome);
+}
+
+/* A criterion of injury that is met beyond the zone's edge. */
+static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct exposure_outcome *exposure,
+                       int64_t watch_ns, const struct outcome_sink *sink)
+{
+    struct sums *sums = &tally->sums[i];
+    struct finding_outcome finding;
+    if (!isfinite(tally->setup.zone_edge_m) || !isfinite(exposure->distance_m))
+        return;
+    const struct zone_distance distance = {.zone_m = tally->setup.zone_edge_m,
+                                           .distance_m = exposure->distance_m,
+                                           .low_m = exposure->distance_low_m,
+                                           .role = tally->setup.role[i][sums->channel - 1],
+                                           .range_m = range_of(tally, i + 1, sums->channel),
+                                           .level_db = exposure->level_db,
+                                           .threshold_db = exposure->value_db};
+    if (tally_zone_finding(&tally->setup.criteria->items[c], &distance, tally->job, &sums->said[c], &finding))
+        say_finding(tally, i, watch_ns, &finding, sink);
+}
+
 static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
     for (uint32_t c = 0; c < tally->setup.criteria->n; c++) {
@@ -182,7 +225,11 @@ static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, con
             continue;
         outcome.counter = ++tally->n_exposures;
         sink->take(sink->context, &outcome);
+        check_zone(tally, i, c, &outcome.as.exposure, watch_ns, sink);
     }
+    struct finding_outcome finding;
+    while (tally_limits_next(&tally->sums[i].limits, tally->setup.criteria, tally->job, &finding))
+        say_finding(tally, i, watch_ns, &finding, sink);
 }
 
 static int by_level(const void *a, const void *b)
@@ -206,7 +253,8 @@ static void fill_numbers(const struct tally *tally, double sel_db, double range_
                                    .low_hz = 10,
                                    .high_hz = 2e4,
                                    .loss = {.law = LOSS_POWER, .n_db = tally->setup.loss_n_db},
-                                   .n_spread_db = tally->setup.loss_n_spread_db};
+                                   .n_spread_db = tally->setup.loss_n_spread_db,
+                                   .scatter_db = tally->setup.scatter_db};
     const struct source_measurement measurement = {.metric = METRIC_SEL_SINGLE,
                                                    .level_db = sel_db,
                                                    .low_hz = 10,
@@ -270,6 +318,8 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
     if (event->kind == EVENT_RUN) {
         tally->run = outcome->run;
         tally->n_exposures = tally->n_sources = 0;
+        for (uint32_t i = 0; i < tally->setup.n_streams; i++)
+            tally->sums[i].n_findings = 0;
     } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         take_impulse(tally, event->stream, &event->as.impulse);
     else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)

@@ -10,6 +10,7 @@
 
 #include "base/status.h"
 #include "flow.h"
+#include "level/calibration.h"
 #include "level/criterion.h"
 #include "level/exposure.h"
 #include "level/source.h"
@@ -22,9 +23,11 @@ struct tally_setup {
     enum criterion_sound sound;      /* what the job makes: set, never guessed */
     uint32_t n_streams;
     double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown */
+    enum channel_role role[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS];
     struct source_shape shape;
     double loss_n_db, loss_n_spread_db; /* N lg r; how unsure N is, one standard deviation */
     double level_spread_db;             /* of calibration and place */
+    double scatter_db;                  /* of one impulse about the loss law */
     double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */
     int64_t day_start_ns;               /* watch time of any midnight where days are counted */
 };

@@ -1,0 +1,107 @@
+/* Limits of one impulse's level, and zones that are too small; see tally_limits.h. */
+#include "rule/tally_limits.h"
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+#define BOUND 1.6449 /* standard deviations to the bounds of a 90 % interval */
+
+void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria)
+{
+    memset(limits, 0, sizeof *limits);
+    for (uint32_t c = 0; c < criteria->n && limits->n < TALLY_MAX_LIMITS; c++) {
+        struct zone_limit limit;
+        if (criterion_applies(&criteria->items[c], SOUND_IMPULSIVE) &&
+            zone_limit_of(&criteria->items[c], &limit) == STATUS_OK)
+            limits->limits[limits->n++] = (struct tally_limit){.criterion = c, .limit = limit};
+    }
+}
+
+void tally_limits_begin_job(struct tally_limits *limits)
+{
+    for (uint32_t i = 0; i < limits->n; i++) {
+        limits->limits[i].tally = (struct zone_tally){0};
+        limits->limits[i].said = ZONE_NOTHING;
+    }
+}
+
+static double level_of(const struct impulse *impulse, enum criterion_metric metric)
+{
+    switch (metric) {
+    case METRIC_PEAK:
+        return impulse->peak_db;
+    case METRIC_PEAK_TO_PEAK:
+        return impulse->peak_to_peak_db;
+    case METRIC_SEL_SINGLE:
+        return impulse->sel_db;
+    case METRIC_SPL:
+        return impulse->rms90_db;
+    default:
+        return NAN;
+    }
+}
+
+void tally_limits_push(struct tally_limits *limits, const struct impulse *impulse,
+                       const struct tally_move *move)
+{
+    if (!(move->range_m > 0) || impulse->overlapped)
+        return;
+    for (uint32_t i = 0; i < limits->n; i++) {
+        struct tally_limit *one = &limits->limits[i];
+        double decades = log10(one->limit.range_m / move->range_m);
+        bool measured = zone_is_measured(move->role, move->range_m, one->limit.range_m);
+        double level_db = level_of(impulse, one->limit.metric) - (measured ? 0 : move->loss_n_db * decades);
+        double spread_db = sqrt(pow(move->level_spread_db, 2) + pow(move->scatter_db, 2) +
+                                pow(move->loss_n_spread_db * decades, 2));
+        /* What is not finite is left out: a refused or missing level says nothing of the limit. */
+        (void)zone_tally_push(&one->tally, &one->limit, one->limit.metric, level_db,
+                              level_db - BOUND * spread_db, measured);
+    }
+}
+
+static void fill(const struct criterion *criterion, const char *code, enum zone_grade grade, const char *job,
+                 struct finding_outcome *out)
+{
+    *out = (struct finding_outcome){0};
+    snprintf(out->code, sizeof out->code, "%s", code);
+    snprintf(out->clause, sizeof out->clause, "%s, %s", criterion->set, criterion->name);
+    snprintf(out->job, sizeof out->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
+    snprintf(out->grade, sizeof out->grade, "%s", zone_grade_text(grade));
+}
+
+bool tally_limits_next(struct tally_limits *limits, const struct criteria *criteria, const char *job,
+                       struct finding_outcome *out)
+{
+    for (uint32_t i = 0; i < limits->n; i++) {
+        struct tally_limit *one = &limits->limits[i];
+        struct zone_verdict verdict = zone_check_limit(&one->tally, &one->limit);
+        if (verdict.grade < ZONE_INDICATIVE || verdict.grade <= one->said)
+            continue;
+        const struct criterion *criterion = &criteria->items[one->criterion];
+        one->said = verdict.grade;
+        fill(criterion, "limit passed", verdict.grade, job, out);
+        snprintf(out->detail, sizeof out->detail,
+                 "%llu of %llu impulses over %.1f dB (%s, re %s) at %.0f m, the highest %.1f dB%s",
+                 (unsigned long long)verdict.n_over, (unsigned long long)verdict.n, one->limit.limit_db,
+                 criterion_metric_text(one->limit.metric), criterion_reference(one->limit.metric),
+                 one->limit.range_m, verdict.highest_db,
+                 criterion->disputed ? "; sources disagree on the metric" : "");
+        return true;
+    }
+    return false;
+}
+
+bool tally_zone_finding(const struct criterion *criterion, const struct zone_distance *distance,
+                        const char *job, enum zone_grade *said, struct finding_outcome *out)
+{
+    enum zone_grade grade = zone_check_distance(distance);
+    bool hurts = criterion->effect == EFFECT_INJURY || criterion->effect == EFFECT_MORTALITY;
+    if (!hurts || grade < ZONE_INDICATIVE || grade <= *said)
+        return false;
+    *said = grade;
+    fill(criterion, "zone too small", grade, job, out);
+    snprintf(out->detail, sizeof out->detail,
+             "the criterion is met at %.0f m (90 %%: at least %.0f m), beyond the zone of %.0f m",
+             distance->distance_m, distance->low_m, distance->zone_m);
+    return true;
+}

@@ -1,0 +1,50 @@
+/* The limits among the criteria, for one stream's impulses of the running job. For lib/rule/tally only. */
+#ifndef RULE_TALLY_LIMITS_H
+#define RULE_TALLY_LIMITS_H
+
+#include "flow.h"
+#include "level/criterion.h"
+#include "level/source.h"
+#include "level/zone_check.h"
+#include <stdint.h>
+
+#define TALLY_MAX_LIMITS 16
+
+struct tally_limit {
+    uint32_t criterion; /* its index */
+    struct zone_limit limit;
+    struct zone_tally tally;
+    enum zone_grade said; /* the strongest finding of the job so far */
+};
+
+/* Plain data. */
+struct tally_limits {
+    uint32_t n;
+    struct tally_limit limits[TALLY_MAX_LIMITS];
+};
+
+/* Those criteria that limit one impulse's level at a range. */
+void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria);
+/* A new job begins: nothing was passed in it yet. */
+void tally_limits_begin_job(struct tally_limits *limits);
+
+/* How levels move from the channel to the limit's range. */
+struct tally_move {
+    enum channel_role role;
+    double range_m; /* NAN: unknown; then nothing is judged */
+    double loss_n_db, loss_n_spread_db, level_spread_db, scatter_db;
+};
+void tally_limits_push(struct tally_limits *limits, const struct impulse *impulse,
+                       const struct tally_move *move);
+
+/* The next limit whose finding is stronger than what was said of it in this job: true, and the finding is
+ * filled but for its causes; false when there is none. */
+bool tally_limits_next(struct tally_limits *limits, const struct criteria *criteria, const char *job,
+                       struct finding_outcome *out);
+
+/* The same for a criterion of injury that reaches beyond the zone; `said` holds what was said of it in this
+ * job. */
+bool tally_zone_finding(const struct criterion *criterion, const struct zone_distance *distance,
+                        const char *job, enum zone_grade *said, struct finding_outcome *out);
+
+#endif
