@@ -139,6 +139,8 @@ static enum status create_tally(struct chain *chain)
                                   .shape = site->source.shape,
                                   .loss_n_db = site->source.loss_n_db,
                                   .loss_n_spread_db = site->source.loss_n_spread_db,
+                                  .water = absorption_of(site->source.temperature_c, site->source.salinity,
+                                                         site->source.depth_m / 2, 8.0),
                                   .level_spread_db = site->source.level_spread_db,
                                   .scatter_db = site->source.scatter_db,
                                   .zone_edge_m = zone_edge_m(chain->permit)};

@@ -15,6 +15,9 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     *out = (struct source_settings){.loss_n_db = 15,
                                     .loss_n_spread_db = SOURCE_ASSUMED_N_SPREAD_DB,
                                     .level_spread_db = 1,
+                                    .temperature_c = 10,
+                                    .salinity = 35,
+                                    .depth_m = 20,
                                     .scatter_db = 1.5};
     group_child(root, "source", READER_OPTIONAL, &group);
     group_word(&group, "form", READER_OPTIONAL, form_words, 3, &form);
@@ -23,6 +26,9 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     group_number(&group, "loss_n_spread_db", READER_OPTIONAL, 0, 10, &out->loss_n_spread_db);
     group_number(&group, "scatter_db", READER_OPTIONAL, 0, 10, &out->scatter_db);
     group_number(&group, "level_spread_db", READER_OPTIONAL, 0, 10, &out->level_spread_db);
+    group_number(&group, "temperature_c", READER_OPTIONAL, -2, 35, &out->temperature_c);
+    group_number(&group, "salinity", READER_OPTIONAL, 0, 42, &out->salinity);
+    group_number(&group, "depth_m", READER_OPTIONAL, 1, 11000, &out->depth_m);
     group_number(&group, "aperture_m", READER_OPTIONAL, 0, 200, &out->shape.aperture_m);
     group_number(&group, "main_hz", READER_OPTIONAL, 0, 1e6, &out->shape.main_hz);
     group_number(&group, "lobe_deg", READER_OPTIONAL, 0, 90, &out->shape.lobe_deg);

@@ -15,8 +15,9 @@ struct source_settings {
     struct source_shape shape;
     enum criterion_sound sound; /* impulsive or continuous: set, never guessed */
     double loss_n_db, loss_n_spread_db;
-    double level_spread_db; /* standard deviation of calibration and place */
-    double scatter_db;      /* of one impulse about the loss law */
+    double temperature_c, salinity, depth_m; /* of the water, for absorption */
+    double level_spread_db;                  /* standard deviation of calibration and place */
+    double scatter_db;                       /* of one impulse about the loss law */
     unsigned n_sets;
     char sets[SOURCE_MAX_SETS][512]; /* files of criteria; none: nothing is summed */
 };

@@ -26,11 +26,22 @@ struct sums {
 struct tally {
     struct tally_setup setup;
     struct sums *sums; /* [n_streams] */
+    struct source_sea sea;
     char job[IMPULSE_JOB_SIZE];
     uint32_t run;
     uint64_t n_exposures, n_sources; /* said in this run */
     int64_t said_minute;
 };
+
+static struct source_law law_of(const struct tally_setup *setup, double low_hz, double high_hz)
+{
+    return (struct source_law){.metric = METRIC_SEL_SINGLE,
+                               .low_hz = low_hz,
+                               .high_hz = high_hz,
+                               .loss = {.law = LOSS_POWER, .n_db = setup->loss_n_db},
+                               .n_spread_db = setup->loss_n_spread_db,
+                               .scatter_db = setup->scatter_db};
+}
 
 enum status tally_create(const struct tally_setup *setup, struct tally **out)
 {
@@ -41,16 +52,19 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
     if (!tally)
         return STATUS_NO_MEMORY;
     tally->setup = *setup;
+    /* The law that the site set is for every band: no fit stands behind it. */
+    tally->sea =
+        (struct source_sea){.n_laws = 1, .has_water = true, .water = setup->water, .n_db = setup->loss_n_db};
+    tally->sea.laws[0] = law_of(setup, 1, 1e6);
     tally->sums = calloc(setup->n_streams, sizeof *tally->sums);
-    const struct exposure_setup exposure = {
-        .n_criteria = setup->criteria->n,
-        .criteria = setup->criteria->items,
-        .sound = setup->sound,
-        .how = BAND_WEIGHTING_CENTRE,
-        .reference_m = SOURCE_NORMAL_M,
-        .day_start_ns = setup->day_start_ns,
-        .level_spread_db = setup->level_spread_db,
-        .loss = {.n_db = setup->loss_n_db, .n_spread_db = setup->loss_n_spread_db}};
+    const struct exposure_setup exposure = {.n_criteria = setup->criteria->n,
+                                            .criteria = setup->criteria->items,
+                                            .sound = setup->sound,
+                                            .how = BAND_WEIGHTING_CENTRE,
+                                            .reference_m = SOURCE_NORMAL_M,
+                                            .day_start_ns = setup->day_start_ns,
+                                            .level_spread_db = setup->level_spread_db,
+                                            .loss = {.between = source_sea_between, .context = &tally->sea}};
     enum status status = tally->sums ? STATUS_OK : STATUS_NO_MEMORY;
     for (uint32_t i = 0; i < setup->n_streams && status == STATUS_OK; i++) {
         tally->sums[i].peak_db = -INFINITY;
@@ -249,12 +263,7 @@ static double median_sel_db(const struct sums *sums)
 
 static void fill_numbers(const struct tally *tally, double sel_db, double range_m, struct source_outcome *out)
 {
-    const struct source_law law = {.metric = METRIC_SEL_SINGLE,
-                                   .low_hz = 10,
-                                   .high_hz = 2e4,
-                                   .loss = {.law = LOSS_POWER, .n_db = tally->setup.loss_n_db},
-                                   .n_spread_db = tally->setup.loss_n_spread_db,
-                                   .scatter_db = tally->setup.scatter_db};
+    const struct source_law law = law_of(&tally->setup, 10, 2e4);
     const struct source_measurement measurement = {.metric = METRIC_SEL_SINGLE,
                                                    .level_db = sel_db,
                                                    .low_hz = 10,

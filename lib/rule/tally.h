@@ -14,6 +14,7 @@
 #include "level/criterion.h"
 #include "level/exposure.h"
 #include "level/source.h"
+#include "sea/absorption.h"
 #include <stdint.h>
 
 #define TALLY_MAX_STREAMS 8
@@ -26,6 +27,7 @@ struct tally_setup {
     enum channel_role role[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS];
     struct source_shape shape;
     double loss_n_db, loss_n_spread_db; /* N lg r; how unsure N is, one standard deviation */
+    struct absorption water;            /* of the sea: added to N lg r at each frequency */
     double level_spread_db;             /* of calibration and place */
     double scatter_db;                  /* of one impulse about the loss law */
     double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */

@@ -60,6 +60,7 @@ static struct tally *make_tally(double range_m)
                                 .level_spread_db = 1,
                                 .zone_edge_m = 500};
     struct tally *tally = NULL;
+    setup.water = absorption_of(10, 35, 10, 8);
     setup.range_m[0][0] = range_m;
     setup.role[0][0] = ROLE_MEASURE;
     assert_int_equal(tally_create(&setup, &tally), STATUS_OK);
