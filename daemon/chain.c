@@ -7,9 +7,7 @@
 #include "http/server.h"
 #include "ledger/ledger.h"
 #include "restore.h"
-#include "rule/watch.h"
-#include "settings/catalogue.h"
-#include "settings/permit.h"
+#include "rules.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -19,11 +17,9 @@
 
 struct chain {
     struct chain_setup setup;
-    struct permit *permit;
-    struct catalogue *catalogue;
-    struct criteria *criteria;
+    struct rules *rules;
     struct tally *tally; /* NULL where the settings name no criteria */
-    struct text permit_text, inputs;
+    struct text inputs;
     uint32_t n_streams;
     struct stream *streams[SITE_MAX_STREAMS];
     struct ledger *ledger;
@@ -43,32 +39,11 @@ struct chain {
     unsigned n_notes;
 };
 
-static enum status load_rules(struct chain *chain, struct problems *problems)
-{
-    const struct site *site = chain->setup.site;
-    unsigned before = problems->count;
-    enum status permit = permit_load(site->permit, problems, chain->permit);
-    enum status calls =
-        catalogue_load(site->calls, problems, &chain->setup.site->effective, chain->catalogue);
-    enum status criteria =
-        source_settings_criteria(&site->source, problems, &chain->setup.site->effective, chain->criteria);
-    if (permit == STATUS_OK && files_read(site->permit, &chain->permit_text) != STATUS_OK)
-        problems_add(problems, site->permit, 0, "", "cannot be read as text");
-    if (problems->count != before)
-        return STATUS_BAD_FORMAT;
-    return permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
-}
-
 void chain_check(struct site *site, struct problems *problems)
 {
-    struct permit *permit = calloc(1, sizeof *permit);
-    struct catalogue *catalogue = calloc(1, sizeof *catalogue);
-    if (permit && catalogue && *site->permit && *site->calls) {
-        permit_load(site->permit, problems, permit);
-        catalogue_load(site->calls, problems, &site->effective, catalogue);
-    }
-    free(permit);
-    free(catalogue);
+    struct rules *rules = NULL;
+    if (*site->permit && *site->calls && rules_load(site, problems, &rules) == STATUS_OK)
+        rules_destroy(rules);
     for (uint32_t i = 0; i < site->n_streams; i++) {
         const struct input_kind *kind = input_find(site->streams[i].input);
         struct input_facts facts;
@@ -94,7 +69,7 @@ static enum status open_streams(struct chain *chain, struct problems *problems)
     for (uint32_t i = 0; i < site->n_streams; i++) {
         struct stream_setup setup = {.number = i + 1,
                                      .settings = &site->streams[i],
-                                     .catalogue = chain->catalogue,
+                                     .catalogue = &chain->rules->catalogue,
                                      .goes_on = !chain->setup.scan && site->streams[i].real_pace};
         if (!chain->setup.scan)
             setup.columns = (struct stream_columns){take_column, chain};
@@ -115,47 +90,6 @@ static void say_ledger_problem(struct chain *chain, struct problems *problems, c
     problems_add(problems, chain->setup.site->ledger, 0, "", "%s", problem);
 }
 
-/* The widest zone that has an edge. */
-static double zone_edge_m(const struct permit *permit)
-{
-    double edge_m = NAN;
-    for (uint32_t i = 0; i < permit->n_zones; i++)
-        if (isfinite(permit->zones[i].radius_m) && !(edge_m > permit->zones[i].radius_m))
-            edge_m = permit->zones[i].radius_m;
-    return edge_m;
-}
-
-static enum status create_tally(struct chain *chain)
-{
-    const struct site *site = chain->setup.site;
-    if (chain->criteria->n == 0)
-        return STATUS_OK;
-    struct tally_setup *setup = calloc(1, sizeof *setup);
-    if (!setup)
-        return STATUS_NO_MEMORY;
-    *setup = (struct tally_setup){.criteria = chain->criteria,
-                                  .sound = site->source.sound,
-                                  .n_streams = chain->n_streams,
-                                  .shape = site->source.shape,
-                                  .loss_n_db = site->source.loss_n_db,
-                                  .loss_n_spread_db = site->source.loss_n_spread_db,
-                                  .water = absorption_of(site->source.temperature_c, site->source.salinity,
-                                                         site->source.depth_m / 2, 8.0),
-                                  .level_spread_db = site->source.level_spread_db,
-                                  .scatter_db = site->source.scatter_db,
-                                  .zone_edge_m = zone_edge_m(chain->permit)};
-    for (uint32_t i = 0; i < chain->n_streams; i++)
-        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
-            const struct channel_settings *channel = &site->streams[i].channels[c];
-            setup->role[i][c] = channel->calibration.role;
-            setup->range_m[i][c] =
-                sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
-        }
-    enum status status = tally_create(setup, &chain->tally);
-    free(setup);
-    return status;
-}
-
 static enum status open_ledger(struct chain *chain, struct problems *problems)
 {
     char problem[LEDGER_PROBLEM_SIZE] = "";
@@ -167,20 +101,12 @@ static enum status open_ledger(struct chain *chain, struct problems *problems)
         say_ledger_problem(chain, problems, problem);
         return status;
     }
-    struct watch_setup setup = {.permit = chain->permit,
-                                .contact_gap_s = site->contact_gap_s,
-                                .look_evidence = site->look_evidence,
-                                .act_evidence = site->act_evidence,
-                                .evidence_decay_s = site->evidence_decay_s,
-                                .sighting_log_spread = site->sighting_log_spread,
-                                .silence_s = site->silence_s};
+    uint32_t n_channels[SITE_MAX_STREAMS];
     for (uint32_t i = 0; i < chain->n_streams; i++)
-        for (uint32_t c = 0; c < stream_get_facts(chain->streams[i])->n_channels; c++)
-            if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
-                setup.listening[i] |= 1U << c;
-    status = watch_create(&setup, &chain->watch);
+        n_channels[i] = stream_get_facts(chain->streams[i])->n_channels;
+    status = rules_create_watch(chain->rules, site, chain->n_streams, n_channels, &chain->watch);
     if (status == STATUS_OK)
-        status = create_tally(chain);
+        status = rules_create_tally(chain->rules, site, chain->n_streams, &chain->tally);
     if (status == STATUS_OK)
         status = restore_watch(chain->ledger, chain->watch, chain->tally, &chain->restored, problem);
     if (status != STATUS_OK && *problem)
@@ -256,7 +182,7 @@ static enum status create_board(struct chain *chain)
 {
     const struct site *site = chain->setup.site;
     struct board_setup setup = {.site = site->name,
-                                .permit = chain->permit,
+                                .permit = &chain->rules->permit,
                                 .run = chain->run,
                                 .unix_at_zero_ns = chain->zero_unix_ns,
                                 .n_stations = site->n_stations,
@@ -282,11 +208,7 @@ enum status chain_create(const struct chain_setup *setup, struct problems *probl
     if (!chain)
         return STATUS_NO_MEMORY;
     chain->setup = *setup;
-    chain->permit = calloc(1, sizeof *chain->permit);
-    chain->catalogue = calloc(1, sizeof *chain->catalogue);
-    chain->criteria = calloc(1, sizeof *chain->criteria);
-    bool made = chain->permit && chain->catalogue && chain->criteria;
-    enum status status = made ? load_rules(chain, problems) : STATUS_NO_MEMORY;
+    enum status status = rules_load(setup->site, problems, &chain->rules);
     if (status == STATUS_OK)
         status = open_streams(chain, problems);
     if (status == STATUS_OK)
@@ -323,15 +245,15 @@ static enum status begin_record(struct chain *chain)
     files_cpu_name(cpu, sizeof cpu);
     struct run_facts facts = {.site = site->name,
                               .settings = site->effective.data,
-                              .permit = chain->permit->id,
+                              .permit = chain->rules->permit.id,
                               .version = HUSHWATCH_VERSION,
                               .build = build,
                               .cpu = cpu,
                               .command = chain->setup.scan ? "scan" : "watch",
                               .start_from = chain->start_from,
                               .input = chain->inputs.data};
-    enum status status =
-        recorder_begin(chain->recorder, &chain->mark, &facts, chain->permit, chain->permit_text.data);
+    enum status status = recorder_begin(chain->recorder, &chain->mark, &facts, &chain->rules->permit,
+                                        chain->rules->permit_text.data);
     for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++) {
         const struct input_facts *input = stream_get_facts(chain->streams[i]);
         status = channels_record(chain->recorder, chain->mark.outage_end_ns,
@@ -458,12 +380,9 @@ void chain_destroy(struct chain *chain)
     watch_destroy(chain->watch);
     tally_destroy(chain->tally);
     restored_destroy(&chain->restored);
-    text_destroy(&chain->permit_text);
     text_destroy(&chain->inputs);
     free(chain->notes);
-    free(chain->permit);
-    free(chain->catalogue);
-    free(chain->criteria);
+    rules_destroy(chain->rules);
     free(chain);
 }
 

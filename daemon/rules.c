@@ -1,0 +1,97 @@
+/* What a run judges by; see rules.h. */
+#include "rules.h"
+#include "files.h"
+#include "settings/catalogue.h"
+#include "settings/permit.h"
+#include <math.h>
+#include <stdlib.h>
+
+enum status rules_load(struct site *site, struct problems *problems, struct rules **out)
+{
+    unsigned before = problems->count;
+    struct rules *rules = calloc(1, sizeof *rules);
+    if (!rules)
+        return STATUS_NO_MEMORY;
+    enum status permit = permit_load(site->permit, problems, &rules->permit);
+    enum status calls = catalogue_load(site->calls, problems, &site->effective, &rules->catalogue);
+    enum status criteria =
+        source_settings_criteria(&site->source, problems, &site->effective, &rules->criteria);
+    if (permit == STATUS_OK && files_read(site->permit, &rules->permit_text) != STATUS_OK)
+        problems_add(problems, site->permit, 0, "", "cannot be read as text");
+    enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
+    if (problems->count != before)
+        status = STATUS_BAD_FORMAT;
+    if (status != STATUS_OK) {
+        rules_destroy(rules);
+        return status;
+    }
+    *out = rules;
+    return STATUS_OK;
+}
+
+void rules_destroy(struct rules *rules)
+{
+    if (!rules)
+        return;
+    text_destroy(&rules->permit_text);
+    free(rules);
+}
+
+enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                               const uint32_t *n_channels, struct watch **out)
+{
+    struct watch_setup setup = {.permit = &rules->permit,
+                                .contact_gap_s = site->contact_gap_s,
+                                .look_evidence = site->look_evidence,
+                                .act_evidence = site->act_evidence,
+                                .evidence_decay_s = site->evidence_decay_s,
+                                .sighting_log_spread = site->sighting_log_spread,
+                                .silence_s = site->silence_s};
+    for (uint32_t i = 0; i < n_streams; i++)
+        for (uint32_t c = 0; c < n_channels[i]; c++)
+            if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
+                setup.listening[i] |= 1U << c;
+    return watch_create(&setup, out);
+}
+
+/* The widest zone that has an edge. */
+static double zone_edge_m(const struct permit *permit)
+{
+    double edge_m = NAN;
+    for (uint32_t i = 0; i < permit->n_zones; i++)
+        if (isfinite(permit->zones[i].radius_m) && !(edge_m > permit->zones[i].radius_m))
+            edge_m = permit->zones[i].radius_m;
+    return edge_m;
+}
+
+enum status rules_create_tally(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                               struct tally **out_tally)
+{
+    *out_tally = NULL;
+    if (rules->criteria.n == 0)
+        return STATUS_OK;
+    struct tally_setup *setup = calloc(1, sizeof *setup);
+    if (!setup)
+        return STATUS_NO_MEMORY;
+    *setup = (struct tally_setup){.criteria = &rules->criteria,
+                                  .sound = site->source.sound,
+                                  .n_streams = n_streams,
+                                  .shape = site->source.shape,
+                                  .loss_n_db = site->source.loss_n_db,
+                                  .loss_n_spread_db = site->source.loss_n_spread_db,
+                                  .water = absorption_of(site->source.temperature_c, site->source.salinity,
+                                                         site->source.depth_m / 2, 8.0),
+                                  .level_spread_db = site->source.level_spread_db,
+                                  .scatter_db = site->source.scatter_db,
+                                  .zone_edge_m = zone_edge_m(&rules->permit)};
+    for (uint32_t i = 0; i < n_streams; i++)
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
+            const struct channel_settings *channel = &site->streams[i].channels[c];
+            setup->role[i][c] = channel->calibration.role;
+            setup->range_m[i][c] =
+                sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
+        }
+    enum status status = tally_create(setup, out_tally);
+    free(setup);
+    return status;
+}

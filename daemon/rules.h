@@ -1,0 +1,35 @@
+/* What a run judges by: the permit, the call catalogue and the criteria that the settings name; and the watch
+ * and the tally made of them. */
+#ifndef RULES_H
+#define RULES_H
+
+#include "base/status.h"
+#include "base/text.h"
+#include "call/catalogue.h"
+#include "level/criterion.h"
+#include "rule/permit.h"
+#include "rule/tally.h"
+#include "rule/watch.h"
+#include "settings/reader.h"
+#include "settings/site.h"
+#include <stdint.h>
+
+struct rules {
+    struct permit permit;
+    struct catalogue catalogue;
+    struct criteria criteria; /* none: nothing is summed */
+    struct text permit_text;  /* the permit's whole file */
+};
+
+/* Loads all three and adds to problems everything that is wrong. STATUS_BAD_FORMAT when anything was added;
+ * STATUS_NO_MEMORY. The caller owns *out. */
+enum status rules_load(struct site *site, struct problems *problems, struct rules **out);
+void rules_destroy(struct rules *rules);
+
+/* Both borrow the rules. n_channels[i]: of stream i + 1. *out_tally is NULL where there are no criteria. */
+enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                               const uint32_t *n_channels, struct watch **out);
+enum status rules_create_tally(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                               struct tally **out_tally);
+
+#endif
