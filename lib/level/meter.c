@@ -1,32 +1,23 @@
 /* Levels of one channel, one a second. */
 #include "level/meter.h"
 #include "base/units.h"
-#include "dsp/lanes.h"
 #include "level/decidecades.h"
 #include "level/second_cells.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define RUN 64u /* samples summed in single precision before the double sums take them */
 #define DC_SECONDS 8
 #define HELD SECOND_CELLS_HELD /* seconds whose bands are not complete yet, at most two in fact */
-
-/* What the samples of one second gave. */
-struct running {
-    uint64_t start_frame;
-    uint32_t frames;
-    double sum, sum_squares;
-    float least, greatest;
-};
 
 struct meter {
     uint32_t rate_hz, hop, n_bands;
     uint32_t fill, counted; /* frames in pending, and how many of them are in the sums */
     bool relative;
     uint64_t next_frame;
-    uint64_t next_second; /* the first not given yet */
-    struct running seconds[HELD];
+    uint64_t next_second;       /* the first not given yet */
+    uint64_t start_frame[HELD]; /* of each second that is held: the first frame heard in it */
+    bool heard[HELD];
     bool know_dc;
     double dc_pa; /* running mean of the samples, which is no sound */
     bool know_offset;
@@ -79,7 +70,7 @@ void meter_reset(struct meter *meter, uint64_t next_frame)
     meter->next_second = next_frame / meter->rate_hz;
     meter->fill = meter->counted = 0;
     meter->know_dc = meter->know_offset = false;
-    memset(meter->seconds, 0, sizeof meter->seconds);
+    memset(meter->heard, 0, sizeof meter->heard);
     decidecades_reset(meter->decidecades, next_frame);
     second_cells_reset(meter->cells);
 }
@@ -104,66 +95,29 @@ static double follow_dc(struct meter *meter, double mean)
 static void give(struct meter *meter, const struct level_sink *sink)
 {
     const uint64_t second = meter->next_second++;
-    struct running *running = &meter->seconds[second % HELD];
+    const struct second_facts facts = second_cells_get(meter->cells, second);
+    const bool enough = facts.frames >= METER_SHORTEST_S * meter->rate_hz;
+    const double dc = enough ? follow_dc(meter, facts.mean_pa) : meter->dc_pa;
     struct decidecade_sums sums;
     struct second_measures measures;
     decidecades_take(meter->decidecades, second, &sums);
-    struct found_level level = {.start_frame = running->start_frame,
+    second_cells_take(meter->cells, second, dc, &measures);
+    meter->heard[second % HELD] = false;
+    if (!enough)
+        return;
+    struct found_level level = {.start_frame = meter->start_frame[second % HELD],
                                 .known_frame = meter->next_frame - 1,
-                                .frames = running->frames,
+                                .frames = facts.frames,
+                                .spl_db = units_spl_db(measures.mean_square_pa2),
+                                .peak_db = units_peak_db(fmax(facts.greatest_pa - dc, dc - facts.least_pa)),
+                                .fast_max_db = units_spl_db(measures.fast_max_pa2),
+                                .slow_max_db = units_spl_db(measures.slow_max_pa2),
+                                .moments = measures.moments,
                                 .n_bands = meter->n_bands,
                                 .relative = meter->relative};
-    if (running->frames >= METER_SHORTEST_S * meter->rate_hz) {
-        const double mean = running->sum / running->frames, dc = follow_dc(meter, mean);
-        double mean_square = running->sum_squares / running->frames - 2 * dc * mean + dc * dc;
-        level.spl_db = units_spl_db(fmax(mean_square, 0));
-        level.peak_db = units_peak_db(fmax(running->greatest - dc, dc - running->least));
-        second_cells_take(meter->cells, second, dc, &measures);
-        level.fast_max_db = units_spl_db(measures.fast_max_pa2);
-        level.slow_max_db = units_spl_db(measures.slow_max_pa2);
-        level.moments = measures.moments;
-        for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
-            level.band_db[b] = b < meter->n_bands ? band_db(&sums, b, meter->rate_hz) : NAN;
-        sink->take(sink->context, &level);
-    } else
-        second_cells_take(meter->cells, second, meter->dc_pa, &measures);
-    memset(running, 0, sizeof *running);
-}
-
-/* Adds at most RUN samples, one by one. */
-static void add_few(struct running *running, const float *x, uint32_t n)
-{
-    for (uint32_t i = 0; i < n; i++) {
-        running->sum += x[i];
-        running->sum_squares += (double)x[i] * x[i];
-        running->least = x[i] < running->least ? x[i] : running->least;
-        running->greatest = x[i] > running->greatest ? x[i] : running->greatest;
-    }
-}
-
-/* Adds samples of one second. Sixteen additions in single precision err by 1e-6 at most, 5e-6 dB. */
-static void add_samples(struct running *running, const float *x, uint32_t n)
-{
-    if (running->frames == 0)
-        running->least = running->greatest = x[0];
-    running->frames += n;
-    for (; n >= RUN; x += RUN, n -= RUN) {
-        lanes sum = {0}, squares = {0}, least = lanes_load(x), greatest = least;
-        for (uint32_t i = 0; i < RUN; i += LANES) {
-            lanes v = lanes_load(x + i);
-            sum += v;
-            squares += v * v;
-            least = lanes_least(v, least);
-            greatest = lanes_greatest(v, greatest);
-        }
-        running->sum += lanes_sum(sum);
-        running->sum_squares += lanes_sum(squares);
-        for (uint32_t j = 0; j < LANES; j++) {
-            running->least = least[j] < running->least ? least[j] : running->least;
-            running->greatest = greatest[j] > running->greatest ? greatest[j] : running->greatest;
-        }
-    }
-    add_few(running, x, n);
+    for (uint32_t b = 0; b < LEVEL_MAX_BANDS; b++)
+        level.band_db[b] = b < meter->n_bands ? band_db(&sums, b, meter->rate_hz) : NAN;
+    sink->take(sink->context, &level);
 }
 
 /* Gives a whole hop to the decidecades. */
@@ -192,10 +146,10 @@ static void count_pending(struct meter *meter)
     if (n == 0)
         return;
     uint64_t from = meter->next_frame - n;
-    struct running *running = &meter->seconds[from / meter->rate_hz % HELD];
-    if (running->frames == 0)
-        running->start_frame = from;
-    add_samples(running, meter->pending + meter->counted, n);
+    const uint64_t slot = from / meter->rate_hz % HELD;
+    if (!meter->heard[slot])
+        meter->start_frame[slot] = from;
+    meter->heard[slot] = true;
     second_cells_push(meter->cells, from, meter->pending + meter->counted, n);
     meter->counted = meter->fill;
 }

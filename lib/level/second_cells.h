@@ -12,7 +12,14 @@
 
 struct second_cells;
 
+/* What a second's samples are like before their offset is known. */
+struct second_facts {
+    uint32_t frames;
+    double mean_pa, least_pa, greatest_pa;
+};
+
 struct second_measures {
+    double mean_square_pa2;            /* about dc_pa, not below 0 */
     double fast_max_pa2, slow_max_pa2; /* greatest weighted mean square in the second, about dc_pa */
     struct moments moments;            /* in pascals */
 };
@@ -24,6 +31,8 @@ void second_cells_destroy(struct second_cells *cells);
 void second_cells_reset(struct second_cells *cells);
 /* Adds n samples that begin at frame `from` of the stream and lie in one second. */
 void second_cells_push(struct second_cells *cells, uint64_t from, const float *pascals, uint32_t n);
+/* A second that is held: all zero where nothing was heard of it. */
+struct second_facts second_cells_get(const struct second_cells *cells, uint64_t second);
 /* Gives the measures of a second, in order of seconds, and forgets it. */
 void second_cells_take(struct second_cells *cells, uint64_t second, double dc_pa,
                        struct second_measures *out);
