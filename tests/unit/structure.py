@@ -8,7 +8,7 @@ import sys
 BUILD = os.environ.get("HUSHWATCH_BUILD", "build")
 TOP = {"README.md", "DEVELOPERS.md", "LICENSE", "Makefile", "daemon", "lib", "web", "tests", "config", "systemd", "docs"}
 LIBC = {"assert.h", "complex.h", "errno.h", "float.h", "inttypes.h", "limits.h", "math.h", "stdalign.h", "stdarg.h",
-        "stdatomic.h", "stdbool.h", "stddef.h", "stdint.h", "stdio.h", "stdlib.h", "string.h", "immintrin.h"}
+        "stdatomic.h", "stdbool.h", "stddef.h", "stdint.h", "stdio.h", "stdlib.h", "string.h", "immintrin.h", "smmintrin.h"}
 # A library's header, and the only places that may see it.
 OWNERS = {"sqlite3.h": ["daemon/ledger/"], "microhttpd.h": ["daemon/http/"], "portaudio.h": ["daemon/capture/"],
           "libconfig.h": ["daemon/settings/"], "sndfile.h": ["daemon/input/recording.c", "daemon/verb/render.c"],
