@@ -1,6 +1,6 @@
-/* The seconds of one channel as cells of about 1 ms, from which the meter makes what needs more than a
- * second's sums: time weighting (level/time_weighting.h) and moments (level/moments.h). Cells begin with the
- * second, so nothing depends on how the sound is cut. For lib/level/meter.c. */
+/* The seconds of one channel as cells of about 1 ms, in one pass over the samples: their sums and extremes,
+ * and from the cells time weighting (level/time_weighting.h) and moments (level/moments.h). Cells begin with
+ * the second, so nothing depends on how the sound is cut. For lib/level/meter.c. */
 #ifndef LEVEL_SECOND_CELLS_H
 #define LEVEL_SECOND_CELLS_H
 
