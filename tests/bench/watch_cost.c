@@ -4,30 +4,27 @@
  * one run mean anything on a shared machine; each figure is the least of ROUNDS, taken in turn.
  *
  * The stages are run as the whole runs them, each block through every channel, so that they find the caches
- * as they do there. resident_mib is what the whole added to the process: objects and what they touched.
+ * as they do there; one block in SAMPLED is timed, since the clock is a system call. resident_mib is what the
+ * whole added to the process: objects and what they touched.
  *
  * usage: watch_cost [RATE_HZ CHANNELS [SECONDS]] */
 #include "base/time.h"
 #include "float_mode.h"
 #include "listen/blocks.h"
 #include "listen/ear.h"
-#include "listen/joiner.h"
 #include "listen/listen.h"
 #include "listen/strips.h"
 #include "rule/watch.h"
-#include "scene/render.h"
 #include "settings/catalogue.h"
 #include "settings/permit.h"
-#include "settings/scene.h"
-#include <fftw3.h>
+#include "support/bench.h"
 #include <math.h>
 #include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
-#include <time.h>
-#include <unistd.h>
 
-#define ROUNDS 3
+#define ROUNDS 5
+#define SAMPLED 5
 
 enum stage {
     STAGE_BLOCKS,
@@ -45,34 +42,9 @@ enum stage {
 static const char *const stage_names[STAGE_COUNT] = {"blocks",   "pick",  "health", "levels", "gate",
                                                      "impulses", "tones", "pulses", "strips", "compare"};
 
-struct sound {
-    double rate_hz;
-    uint32_t n_channels;
-    uint64_t n_frames;
-    float *frames; /* [n_frames * n_channels] */
-    struct calibration calibration;
-};
-
 static struct catalogue catalogue;
 static struct permit permit;
 static uint64_t n_events, n_calls, n_impulses;
-
-static double cpu_s(void)
-{
-    struct timespec now;
-    clock_gettime(CLOCK_THREAD_CPUTIME_ID, &now);
-    return (double)now.tv_sec + (double)now.tv_nsec * 1e-9;
-}
-
-/* What one look at that clock costs: it is a system call, and there are many between the stages. */
-static double clock_cost_s(void)
-{
-    enum { LOOKS = 20000 };
-    double start = cpu_s(), end = start;
-    for (int i = 0; i < LOOKS; i++)
-        end = cpu_s();
-    return (end - start) / LOOKS;
-}
 
 static void ignore_level(void *context, uint32_t channel, const struct found_level *level)
 {
@@ -133,84 +105,12 @@ static void drop_column(void *context, const struct column *column)
     (void)column;
 }
 
-static bool render_busy(struct sound *sound)
-{
-    static struct scene_file file;
-    struct problems problems = {0};
-    struct render *render;
-    if (scene_load("config/scenes/busy.cfg", &problems, &file) != STATUS_OK) {
-        fputs(problems.lines.data ? problems.lines.data : "no scene\n", stderr);
-        return false;
-    }
-    file.scene.rate_hz = sound->rate_hz;
-    file.scene.n_hydrophones = sound->n_channels;
-    sound->calibration = file.scene.hydrophones[0].calibration;
-    sound->calibration.role = ROLE_BOTH;
-    sound->frames = malloc(sound->n_frames * sound->n_channels * sizeof(float));
-    if (!sound->frames || render_create(&file.scene, &render) != STATUS_OK)
-        return false;
-    for (uint64_t at = 0; at < sound->n_frames; at += 4096) {
-        uint64_t n = sound->n_frames - at < 4096 ? sound->n_frames - at : 4096;
-        render_get(render, at, sound->frames + at * sound->n_channels, (uint32_t)n);
-    }
-    render_destroy(render);
-    scene_file_destroy(&file);
-    return true;
-}
-
-static void push_all(const struct sound *sound, struct blocks *blocks, const struct block_sink *sink)
+static void push_all(const struct bench_sound *sound, struct blocks *blocks, const struct block_sink *sink)
 {
     for (uint64_t at = 0; at < sound->n_frames; at += 4096) {
         uint64_t n = sound->n_frames - at < 4096 ? sound->n_frames - at : 4096;
         blocks_push(blocks, 0, sound->frames + at * sound->n_channels, (uint32_t)n, sink);
     }
-}
-
-/* What the process has in memory now. */
-static double resident_mib(void)
-{
-    unsigned long long size = 0, resident = 0;
-    FILE *file = fopen("/proc/self/statm", "r");
-    if (!file || fscanf(file, "%llu %llu", &size, &resident) != 2)
-        resident = 0;
-    if (file)
-        fclose(file);
-    return (double)resident * (double)sysconf(_SC_PAGESIZE) / 1048576;
-}
-
-/* Window, FFT, magnitude of one channel, half overlapped. */
-static double bare_spectra_s(const struct sound *sound)
-{
-    enum { N = 1024 };
-    float *in = fftwf_alloc_real(N), window[N];
-    fftwf_complex *out = fftwf_alloc_complex(N / 2 + 1);
-    fftwf_plan plan = fftwf_plan_dft_r2c_1d(N, in, out, FFTW_ESTIMATE);
-    float *channel = malloc(sound->n_frames * sizeof *channel);
-    static volatile float kept;
-    double spent = 0;
-    for (int i = 0; i < N; i++)
-        window[i] = 0.5F - 0.5F * cosf((float)(2 * M_PI * i / N));
-    for (uint32_t c = 0; c < sound->n_channels; c++) {
-        for (uint64_t i = 0; i < sound->n_frames; i++)
-            channel[i] = sound->frames[i * sound->n_channels + c];
-        double start = cpu_s();
-        for (uint64_t at = 0; at + N <= sound->n_frames; at += N / 2) {
-            float magnitude[N / 2 + 1];
-            for (int i = 0; i < N; i++)
-                in[i] = channel[at + (uint64_t)i] * window[i];
-            fftwf_execute(plan);
-            for (int k = 0; k <= N / 2; k++)
-                magnitude[k] = sqrtf(out[k][0] * out[k][0] + out[k][1] * out[k][1]);
-            kept = magnitude[at / N % (N / 2)];
-        }
-        spent += cpu_s() - start;
-    }
-    (void)kept;
-    free(channel);
-    fftwf_destroy_plan(plan);
-    fftwf_free(in);
-    fftwf_free(out);
-    return spent;
 }
 
 /* What one channel finds is dropped, but that an impulse goes to its gate. */
@@ -239,61 +139,74 @@ static void push_ear(struct ear *ear, const float *frames, uint32_t n, uint32_t 
     struct dropped dropped = {ear};
     const struct found_sink calls = {drop_call, NULL};
     double times[STAGE_STRIPS + 1];
-    times[STAGE_PICK] = cpu_s();
+    times[STAGE_PICK] = bench_cpu_s();
     ear_pick(ear, frames, n, n_channels);
-    times[STAGE_HEALTH] = cpu_s();
+    times[STAGE_HEALTH] = bench_cpu_s();
     health_push(ear->health, ear->samples, n, &(struct fault_sink){drop_fault, NULL});
-    times[STAGE_LEVELS] = cpu_s();
+    times[STAGE_LEVELS] = bench_cpu_s();
     meter_push(ear->meter, ear->pascals, n, &(struct level_sink){drop_level, &dropped});
-    times[STAGE_GATE] = cpu_s();
+    times[STAGE_GATE] = bench_cpu_s();
     if (ear->gate)
         gate_push(ear->gate, ear->pascals, n, &(struct gate_masked_sink){drop_masked, NULL});
-    times[STAGE_IMPULSES] = cpu_s();
+    times[STAGE_IMPULSES] = bench_cpu_s();
     if (ear->impulses)
         impulse_finder_push(ear->impulses, ear->pascals, n, &(struct impulse_sink){drop_impulse, &dropped});
-    times[STAGE_TONES] = cpu_s();
+    times[STAGE_TONES] = bench_cpu_s();
     tones_push(ear->tones, ear->pascals, n, &calls);
-    times[STAGE_PULSES] = cpu_s();
+    times[STAGE_PULSES] = bench_cpu_s();
     pulses_push(ear->pulses, ear->pascals, n, &calls);
-    times[STAGE_STRIPS] = cpu_s();
+    times[STAGE_STRIPS] = bench_cpu_s();
     for (int s = STAGE_PICK; s < STAGE_STRIPS; s++)
         out[s] += times[s + 1] - times[s] - clock_s;
 }
 
 struct stages {
-    const struct sound *sound;
+    const struct bench_sound *sound;
     struct ear ears[FLOW_MAX_CHANNELS];
     struct strips *strips;
+    uint64_t n_blocks;
     double clock_s, spent_s[STAGE_COUNT];
 };
+
+static void compare_ears(struct stages *stages, uint32_t n_channels)
+{
+    for (uint32_t later = 1; later < n_channels; later++)
+        for (uint32_t earlier = 0; earlier < later; earlier++)
+            ear_compare(&stages->ears[earlier], &stages->ears[later]);
+}
 
 static void run_stages(void *context, const struct block *block)
 {
     struct stages *stages = context;
     const struct time_map map = {.rate_hz = stages->sound->rate_hz};
-    double start = cpu_s();
+    const bool timed = stages->n_blocks++ % SAMPLED == 0;
+    double times[4] = {bench_cpu_s()};
     for (uint32_t c = 0; c < block->n_channels; c++)
-        push_ear(&stages->ears[c], block->samples, block->n_frames, block->n_channels, stages->clock_s,
-                 stages->spent_s);
-    double ears_end = cpu_s();
+        if (timed)
+            push_ear(&stages->ears[c], block->samples, block->n_frames, block->n_channels, stages->clock_s,
+                     stages->spent_s);
+        else
+            ear_push(&stages->ears[c], block->samples, block->n_frames, block->n_channels);
+    times[1] = timed ? bench_cpu_s() : 0;
     strips_push(stages->strips, stages->ears[0].pascals, block->n_frames, &map,
                 &(struct column_sink){drop_column, NULL});
-    double strips_end = cpu_s();
-    for (uint32_t later = 1; later < block->n_channels; later++)
-        for (uint32_t earlier = 0; earlier < later; earlier++)
-            ear_compare(&stages->ears[earlier], &stages->ears[later]);
-    double end = cpu_s();
-    stages->spent_s[STAGE_STRIPS] += strips_end - ears_end - stages->clock_s;
-    stages->spent_s[STAGE_COMPARE] += end - strips_end - stages->clock_s;
-    stages->spent_s[STAGE_BLOCKS] -= end - start + stages->clock_s; /* the rest of the time is theirs */
+    times[2] = timed ? bench_cpu_s() : 0;
+    compare_ears(stages, block->n_channels);
+    times[3] = bench_cpu_s();
+    if (timed) {
+        stages->spent_s[STAGE_STRIPS] += times[2] - times[1] - stages->clock_s;
+        stages->spent_s[STAGE_COMPARE] += times[3] - times[2] - stages->clock_s;
+    }
+    stages->spent_s[STAGE_BLOCKS] -=
+        times[3] - times[0] + stages->clock_s; /* the rest of the time is theirs */
 }
 
 /* Each stage by itself, each block through every channel; false without memory. */
-static bool stages_s(const struct sound *sound, double out[STAGE_COUNT])
+static bool stages_s(const struct bench_sound *sound, double out[STAGE_COUNT])
 {
     static struct stages stages;
     struct blocks *blocks;
-    stages = (struct stages){.sound = sound, .clock_s = clock_cost_s()};
+    stages = (struct stages){.sound = sound, .clock_s = bench_clock_cost_s()};
     struct ear_setup setup = {
         .rate_hz = sound->rate_hz,
         .max_frames = flow_block_frames(sound->rate_hz),
@@ -310,11 +223,12 @@ static bool stages_s(const struct sound *sound, double out[STAGE_COUNT])
     if (strips_create(sound->rate_hz, false, &stages.strips) ||
         blocks_create(1, sound->n_channels, sound->rate_hz, &blocks))
         return false;
-    double start = cpu_s();
+    double start = bench_cpu_s();
     push_all(sound, blocks, &(struct block_sink){run_stages, &stages});
-    stages.spent_s[STAGE_BLOCKS] += cpu_s() - start;
+    stages.spent_s[STAGE_BLOCKS] += bench_cpu_s() - start;
+    const double all_blocks = (double)stages.n_blocks / (double)((stages.n_blocks + SAMPLED - 1) / SAMPLED);
     for (int s = 0; s < STAGE_COUNT; s++)
-        out[s] = fmin(out[s], stages.spent_s[s]);
+        out[s] = fmin(out[s], stages.spent_s[s] * (s == STAGE_BLOCKS ? 1 : all_blocks));
     blocks_destroy(blocks);
     strips_destroy(stages.strips);
     for (uint32_t c = 0; c < sound->n_channels; c++)
@@ -340,9 +254,9 @@ static void take_event(void *context, const struct event *event)
     struct chain *chain = context;
     n_calls += event->kind == EVENT_CALL;
     n_impulses += event->kind == EVENT_IMPULSE;
-    double start = cpu_s();
+    double start = bench_cpu_s();
     watch_push(chain->watch, event, &(struct outcome_sink){count_outcome, NULL});
-    chain->watch_s += cpu_s() - start;
+    chain->watch_s += bench_cpu_s() - start;
 }
 
 static void take_block(void *context, const struct block *block)
@@ -352,10 +266,10 @@ static void take_block(void *context, const struct block *block)
 }
 
 /* The whole of lib: blocks, listen with its strips, watch. */
-static double whole_s(const struct sound *sound, double *out_watch_s, double *out_mib)
+static double whole_s(const struct bench_sound *sound, double *out_watch_s, double *out_mib)
 {
     struct chain chain = {0};
-    double before_mib = resident_mib();
+    double before_mib = bench_resident_mib();
     n_calls = n_impulses = 0;
     struct blocks *blocks;
     struct listen_setup setup = {.stream = 1,
@@ -378,11 +292,11 @@ static double whole_s(const struct sound *sound, double *out_watch_s, double *ou
         blocks_create(1, sound->n_channels, sound->rate_hz, &blocks))
         return NAN;
     const struct block_sink sink = {take_block, &chain};
-    double start = cpu_s();
+    double start = bench_cpu_s();
     push_all(sound, blocks, &sink);
-    double spent = cpu_s() - start;
+    double spent = bench_cpu_s() - start;
     *out_watch_s = chain.watch_s;
-    *out_mib = resident_mib() - before_mib;
+    *out_mib = bench_resident_mib() - before_mib;
     blocks_destroy(blocks);
     listen_destroy(chain.listen);
     watch_destroy(chain.watch);
@@ -394,9 +308,9 @@ struct costs {
 };
 
 /* One more round of each; every figure keeps its least. */
-static bool measure(const struct sound *sound, struct costs *costs)
+static bool measure(const struct bench_sound *sound, struct costs *costs)
 {
-    double watch, mib, bare = bare_spectra_s(sound), whole = whole_s(sound, &watch, &mib);
+    double watch, mib, bare = bench_bare_spectra_s(sound), whole = whole_s(sound, &watch, &mib);
     if (isnan(whole) || !stages_s(sound, costs->stages_s))
         return false;
     costs->bare_s = fmin(costs->bare_s, bare);
@@ -406,7 +320,7 @@ static bool measure(const struct sound *sound, struct costs *costs)
     return true;
 }
 
-static void print_costs(const struct sound *sound, const struct costs *costs)
+static void print_costs(const struct bench_sound *sound, const struct costs *costs)
 {
     double seconds = (double)sound->n_frames / sound->rate_hz, sum = costs->watch_s;
     double ns = 1e9 / ((double)sound->n_frames * sound->n_channels);
@@ -427,8 +341,8 @@ static void print_costs(const struct sound *sound, const struct costs *costs)
 
 int main(int argc, char **argv)
 {
-    struct sound sound = {.rate_hz = argc > 2 ? atof(argv[1]) : 192000,
-                          .n_channels = argc > 2 ? (uint32_t)atoi(argv[2]) : 8};
+    struct bench_sound sound = {.rate_hz = argc > 2 ? atof(argv[1]) : 192000,
+                                .n_channels = argc > 2 ? (uint32_t)atoi(argv[2]) : 8};
     struct problems problems = {0};
     struct costs costs = {.bare_s = INFINITY, .whole_s = INFINITY, .watch_s = INFINITY};
     for (int s = 0; s < STAGE_COUNT; s++)
@@ -437,7 +351,7 @@ int main(int argc, char **argv)
     sound.n_frames = (uint64_t)((argc > 3 ? atof(argv[3]) : 20) * sound.rate_hz);
     if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
         permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
-        !render_busy(&sound)) {
+        !bench_render_busy(&sound)) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);
         return 3;
     }
