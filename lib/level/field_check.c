@@ -23,7 +23,7 @@ enum status field_check_reset(struct field_check *check, double rate_hz, double 
 static void end_second(struct field_check *check)
 {
     const double n = check->rate_hz, mean = check->sum / n;
-    if (check->frames > check->rate_hz && check->n_seconds < FIELD_CHECK_MAX_SECONDS) {
+    if (check->frames > (uint64_t)check->rate_hz && check->n_seconds < FIELD_CHECK_MAX_SECONDS) {
         check->tone_pa2[check->n_seconds] = check->tone / n;
         check->all_pa2[check->n_seconds++] = check->all / n - mean * mean;
     }
