@@ -22,7 +22,7 @@ function openForm(card, name) {
   const form = el("form", {}, ...FORMS[name].fields.map(field), el("button", { class: "main", text: FORMS[name].button }));
   form.addEventListener("submit", async (event) => {
     event.preventDefault();
-    const who = person(true);
+    const who = person(form.querySelector("button"));
     if (who === null) return;
     const note = { ...FORMS[name].note, person: who, contact: Number(card.dataset.key), ...values(form) };
     if (await send(note, form)) openForm(card, name);

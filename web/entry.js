@@ -22,12 +22,32 @@ const KINDS = {
   Mark: { kind: "mark", fields: () => [{ name: "text", label: "What was it?", required: true, maxlength: 200, wide: true }] },
 };
 
-/** Who enters: the name at the top; asks for it when a note needs one. */
-export function person(needed) {
+let asker = null; // the button that could not do its work without a name
+
+/** Says beside a button that a name is needed, with the way to its field. */
+function askName(button) {
+  asker = button;
+  if (button.parentNode.querySelector(".asks")) return;
+  const go = el("button", { type: "button", class: "plain", text: "Enter name", onclick: () => $("person").focus() });
+  button.after(el("span", { class: "asks", role: "alert" }, el("span", { text: "Not entered: your name is needed, at the top." }), go));
+}
+
+function startName() {
+  const field = $("person");
+  field.addEventListener("input", () => field.value.trim() && document.querySelectorAll(".asks").forEach((note) => note.remove()));
+  field.addEventListener("keydown", (event) => {
+    if (event.key !== "Enter" || !field.value.trim() || !asker) return;
+    event.preventDefault(); // or the same key would press the button
+    if (asker.isConnected) asker.focus(); // back to what was to be entered
+    asker = null;
+  });
+}
+
+/** Who enters: the name at the top; where a note needs one and there is none, says so beside its button. */
+export function person(button) {
   const name = $("person").value.trim();
-  if (!name && needed) {
-    $("person").focus();
-    say("Enter your name at the top first.", true);
+  if (!name && button) {
+    askName(button);
     return null;
   }
   if (name) remember("person", name);
@@ -83,11 +103,12 @@ export function chooseEntry(name, permit, focus) {
 }
 
 export function startEntry(permit) {
+  startName();
   if (!$("kinds").firstChild)
     for (const name of Object.keys(KINDS)) $("kinds").append(el("button", { type: "button", class: "plain", text: name, onclick: () => chooseEntry(name, permit(), true) }));
   $("entry").addEventListener("submit", async (event) => {
     event.preventDefault();
-    const kind = KINDS[chosen], name = person(kind.person);
+    const kind = KINDS[chosen], name = person(kind.person && event.target.querySelector("button"));
     if (name === null) return;
     const note = { kind: kind.kind, ...(name ? { person: name } : {}), ...values(event.target) };
     if (await send(note, event.target)) chooseEntry(chosen, permit(), false);

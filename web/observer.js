@@ -176,14 +176,14 @@ function startForms() {
   $("person").value = remembered("person");
   $("person").addEventListener("change", () => remember("person", $("person").value.trim()));
   $("release").addEventListener("click", () => {
-    const who = person(true);
+    const who = person($("release"));
     if (who !== null) send({ kind: "release", person: who });
   });
   const sign = $("sign");
   sign.elements.watch.addEventListener("change", () => ($("sign_station").hidden = sign.elements.watch.value !== "crew"));
   sign.addEventListener("submit", (event) => {
     event.preventDefault();
-    const who = person(true), watch = sign.elements.watch.value;
+    const who = person(sign.querySelector("button")), watch = sign.elements.watch.value;
     if (who !== null) send({ kind: "sign-on", person: who, watch, ...(watch === "crew" ? { station: sign.elements.station.value } : {}) }, sign);
   });
   startEntry(() => site);

@@ -74,10 +74,38 @@ def observer_shows(server, observer):
     observer.picture("observer-delay-day")
 
 
+def nameless(server, observer):
+    """Every button that needs a name says so beside itself, and sends nothing."""
+    find(observer, "#person").clear()
+    server.say("ready")
+    observer.until("return !document.getElementById('release').hidden", 3)
+    before = len(server.notes())
+    uses = [("release", "#release", None), ("sign on", "#sign button", None), ("sighting", "#entry button", None)]
+    for name in ("confirm", "dismiss", "distance", "left"):
+        uses.append((name, "#contacts [data-key='3'] form button", name))
+    for name, button, form in uses:
+        if form:
+            find(observer, "#contacts [data-key='3'] [data-form=%s]" % form).click()
+            field = find(observer, "#contacts [data-key='3'] form input")
+            field.clear()
+            field.send_keys("300")
+        find(observer, button).click()
+        beside = observer.script("const n = document.querySelector(arguments[0]).nextElementSibling; return n && n.className === 'asks' ? [n.innerText, n.getBoundingClientRect().top - document.querySelector(arguments[0]).getBoundingClientRect().bottom] : null", button)
+        check(beside and "your name is needed" in beside[0] and -40 < beside[1] < 40, name + " without a name: said beside the button", beside)
+    observer.picture("observer-nameless")
+    check(len(server.notes()) == before, "and nothing was sent", server.notes())
+    find(observer, "#contacts [data-key='3'] .asks button").click()
+    active = observer.driver.switch_to.active_element
+    active.send_keys("Ada Lind")
+    check(active.get_attribute("id") == "person" and observer.script("return document.querySelectorAll('.asks').length") == 0, "a name ends the question everywhere")
+    active.send_keys(Keys.ENTER)
+    back = observer.script("const n = document.activeElement; return n.textContent")
+    check(back == "It has left" and len(server.notes()) == before, "and Enter goes back to what was to be entered, and enters nothing", (back, server.notes()))
+    find(observer, "#contacts [data-key='3'] [data-form=left]").click()
+    server.say("delay")
+
+
 def enter(server, observer):
-    person = find(observer, "#person")
-    person.clear()
-    person.send_keys("Ada Lind")
     card = "#contacts [data-key='3'] "
     find(observer, card + "[data-form=distance]").click()
     field = find(observer, card + "input[name=distance_m]")
@@ -313,6 +341,7 @@ def main():
         observer.open(server.base + "/")
         crew.open(crew_url(server))
         observer_shows(server, observer)
+        nameless(server, observer)
         enter(server, observer)
         crew_answers(server, crew)
         reload_keeps(server, observer, crew)

@@ -1,6 +1,6 @@
 #!/usr/bin/python3
 """The whole chain seen from two browsers: a simulated scene, the real daemon, its ledger. The observer works from the page
-(distance, release, source state, verdict), the crew acknowledges; the daemon is killed and started again with a stop in
+(distance, release, source state, verdicts), the crew acknowledges; the daemon is killed and started again with a stop in
 force. Scene, people and permit of seconds are invented."""
 import os
 import signal
@@ -23,7 +23,8 @@ sea = { temperature_c = 11.0; salinity = 34.0; depth_m = 20.0; wind_m_s = 3.0; s
 hydrophones = ( { x_m = 150.0; y_m = 0.0; z_m = 10.0; sensitivity_db = -170.0; gain_db = 0.0; full_scale_v = 10.0; },
                 { x_m = 0.0; y_m = 750.0; z_m = 10.0; sensitivity_db = -170.0; gain_db = 0.0; full_scale_v = 10.0; } );
 animals = ( { voice = "delphinid whistle"; members = 3; x_m = 300.0; y_m = 50.0; z_m = 5.0; start_s = 6.0; end_s = 10.0; },
-            { voice = "delphinid whistle"; members = 3; x_m = 200.0; y_m = 50.0; z_m = 5.0; start_s = 34.0; end_s = 39.0; } );
+            { voice = "delphinid whistle"; members = 3; x_m = 200.0; y_m = 50.0; z_m = 5.0; start_s = 34.0; end_s = 39.0; },
+            { voice = "delphinid whistle"; members = 3; x_m = 250.0; y_m = 50.0; z_m = 5.0; start_s = 72.0; end_s = 77.0; } );
 hammers = ( { x_m = 0.0; y_m = 0.0; z_m = 10.0; start_s = 24.0;
     steps = ( { duration_s = 16.0; blow_interval_s = 1.0; source_energy_level_db = 195.0; } ); } );
 notes = ( { at_s = 0.5; kind = "sign-on"; person = "A. Eyes"; watch = "visual"; },
@@ -48,6 +49,13 @@ def find(browser, selector):
     return browser.driver.find_element(By.CSS_SELECTOR, selector)
 
 
+def card_of(browser, state):
+    """Number of the newest contact in a state, or None."""
+    return browser.script("""
+        const n = [...document.querySelectorAll('#contacts .card')].filter((c) => (c.querySelector('.state').textContent || 'open') === arguments[0]);
+        return n.length ? String(Math.max(...n.map((c) => Number(c.dataset.key)))) : null""", state)
+
+
 def before_the_start(observer, crew):
     shown, _ = observer.until("return document.querySelector('#ladder [data-contact=\"1\"]') !== null", 15)
     label = observer.script("return document.querySelector('#ladder svg').getAttribute('aria-label')")
@@ -58,6 +66,11 @@ def before_the_start(observer, crew):
     marked, _ = observer.until("return document.getElementById('calls').textContent.includes('delphinid')", 5)
     check("its calls are listed under the strips of sound", marked, observer.text("#calls"))
     observer.picture("chain-1-contact")
+    find(observer, "#contacts [data-key='1'] [data-form=distance]").click()
+    find(observer, "#contacts [data-key='1'] input[name=distance_m]").send_keys("2500", Keys.ENTER)
+    asked, _ = observer.until("const n = document.querySelector('#contacts [data-key=\"1\"] .asks'); return n && n.innerText.includes('your name is needed')", 3)
+    check("without a name nothing is entered, and the page says so beside the button", asked)
+    find(observer, "#contacts [data-key='1'] [data-form=distance]").click()
     find(observer, "#person").send_keys("A. Eyes")
     find(observer, "#contacts [data-key='1'] [data-form=distance]").click()
     find(observer, "#contacts [data-key='1'] input[name=distance_m]").send_keys("2500", Keys.ENTER)
@@ -83,6 +96,12 @@ def the_stop(observer, crew):
     check("the observer's page says the same", same, observer.text("#words"))
     unconfirmed = "not yet confirmed" in crew.text("#tags")
     check("unanswered by the observer, the stop is marked 'not yet confirmed'", unconfirmed, crew.text("#tags"))
+    number = card_of(observer, "open")
+    find(observer, "#contacts [data-key='%s'] [data-form=confirm]" % number).click()
+    find(observer, "#contacts [data-key='%s'] .card_form input" % number).send_keys(Keys.ENTER)
+    firm, took = crew.until("return document.getElementById('words').textContent === 'STOP.' && !document.getElementById('tags').textContent.includes('not yet confirmed')", 3)
+    check("confirmed by the observer, the stop stays and is no longer marked", firm, (crew.text("#words"), crew.text("#tags")))
+    figure("confirmed, and shown on the crew's page, in %.0f ms" % (1000 * took))
     crew.picture("chain-3-stop")
     observer.picture("chain-3-stop-observer")
     crew.until("return document.getElementById('acknowledge').hidden === false", 2)
@@ -110,6 +129,26 @@ def killed(daemon, observer, crew):
     crew.picture("chain-4-restarted")
 
 
+def dismissed(observer, crew):
+    number, _ = observer.until("const n = [...document.querySelectorAll('#contacts .card')].find((c) => c.querySelector('.state').textContent === '' && c.querySelector('.countdown').offsetParent); return n && n.dataset.key", 45)
+    check("whistles again: the observer is asked for a verdict", number, observer.text("#contacts"))
+    if not number:
+        return
+    find(observer, "#contacts [data-key='%s'] [data-form=dismiss]" % number).click()
+    find(observer, "#contacts [data-key='%s'] .card_form button" % number).click()
+    stays = observer.script("return document.querySelector('#contacts [data-key=\"%s\"] .card_form form') !== null" % number)
+    check("a dismissal without a reason is not sent", stays and card_of(observer, "dismissed") is None, observer.text("#contacts"))
+    find(observer, "#contacts [data-key='%s'] .card_form input" % number).send_keys("a loudspeaker of ours", Keys.ENTER)
+    gone, _ = observer.until("return document.querySelector('#contacts [data-key=\"%s\"] .state').textContent === 'dismissed'" % number, 3)
+    check("dismissed with a reason, the contact is marked so", gone, observer.text("#contacts"))
+    observer.picture("chain-5-dismissed")
+    find(observer, "#explain summary").click()
+    told, _ = observer.until("return document.getElementById('classes').innerText.includes('delphinid whistle: ')", 3)
+    text = observer.script("return document.getElementById('classes').innerText")
+    check("why sounds were not calls is told of each class, from the stream itself",
+          told and "porpoise click train: cannot be heard at 48 kHz" in text and "rejected: " in text, text)
+
+
 def the_ledger(ledger):
     rows = ask(ledger, "SELECT json_extract(body, '$.note'), json_extract(body, '$.person'), json_extract(body, '$.station'), "
                "json_extract(body, '$.advice') FROM entry WHERE kind = 'note' ORDER BY seq")
@@ -120,6 +159,12 @@ def the_ledger(ledger):
     check("the ledger has the acknowledgement once, with person, station and advice",
           len(answers) == 1 and answers[0][1:3] == ("C. Crew", "crew") and answers[0][3] in stops, (rows, stops))
     check("and the distance, the release and the source's state", all(kind in kinds for kind in ("distance", "release", "source state")), kinds)
+    verdicts = ask(ledger, "SELECT json_extract(body, '$.verdict'), json_extract(body, '$.person'), json_extract(body, '$.text') "
+                   "FROM entry WHERE kind = 'note' AND json_extract(body, '$.note') = 'verdict' ORDER BY seq")
+    check("and both verdicts, with person and reason", verdicts == [("confirm", "A. Eyes", "heard and judged real"),
+                                                                    ("dismiss", "A. Eyes", "a loudspeaker of ours")], verdicts)
+    states = [row[0] for row in ask(ledger, "SELECT state FROM contact ORDER BY seq")]
+    check("and the contact as dismissed", "dismissed" in states, states)
     done = verify(ledger)
     check("the ledger verifies", done.returncode == 0, done.stdout)
 
@@ -143,6 +188,7 @@ def main():
                 before_the_start(observer, crew)
                 the_stop(observer, crew)
                 killed(daemon, observer, crew)
+                dismissed(observer, crew)
                 seconds, code = daemon.terminate()
                 check("SIGTERM with open pages ends it in under 1 s", seconds < 1.0 and code == 0, (seconds, code, daemon.errors()))
                 figure("SIGTERM with two open pages: %.2f s" % seconds)
