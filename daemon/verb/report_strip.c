@@ -32,9 +32,11 @@ static const char phase_sql[] =
     "SELECT " WATCH_S("utc") ", lead(" WATCH_S("utc") ") OVER (ORDER BY seq),"
     " CASE WHEN phase IN ('soft start', 'hold', 'full power', 'reduced', 'vibro', 'drilling', 'test')"
     " THEN 'grey' ELSE 'open' END, phase FROM phase";
+/* Entries of a contact are its changes, so that one which is open last is open to the end. */
 static const char contact_sql[] =
-    "SELECT min(" WATCH_S("utc") "), max(" WATCH_S("utc") "),"
-    " CASE WHEN max(grade = 'act') THEN 'bar' ELSE 'open' END FROM contact GROUP BY contact";
+    "SELECT min(" WATCH_S("utc") "), CASE WHEN (SELECT state FROM contact AS last"
+    " WHERE last.contact = c.contact ORDER BY seq DESC LIMIT 1) <> 'open' THEN max(" WATCH_S("utc") ") END,"
+    " CASE WHEN max(grade = 'act') THEN 'bar' ELSE 'open' END FROM contact AS c GROUP BY contact";
 static const char advice_sql[] =
     "SELECT " WATCH_S("utc") ", CASE WHEN advice IN ('stop', 'do not start', 'hold power', 'reduce power',"
     " 'prepare to stop') THEN 'stop' ELSE '' END FROM advice WHERE station <> 'observer' ORDER BY 2, 1";

@@ -76,10 +76,10 @@ static const char advice_sql[] =
 static const char phases_sql[] = "SELECT " WHEN("utc") ", phase, reason, clause, job FROM phase ORDER BY seq";
 
 static const char contacts_sql[] =
-    "SELECT c.contact, c.\"group\", s.grade, " WHEN("s.first_utc") ", " CLOCK("s.last_utc") ", s.n_calls,"
+    "SELECT c.contact, c.\"group\", s.grade, " WHEN("s.first_utc") ", " CLOCK("s.last_utc") ", c.state, s.n_calls,"
     " coalesce(" KNOWN("%.0f", "d.distance_p50_m") ", 'unknown'),"
     " " KNOWN("%.0f", "d.distance_p05_m") " || ' to ' || " KNOWN("%.0f", "d.distance_p95_m") ","
-    " " KNOWN("%.2f", "d.p_inside") ", c.state"
+    " " KNOWN("%.2f", "d.p_inside")
     " FROM contact AS c JOIN (SELECT max(seq) AS last_seq, min(utc) AS first_utc, max(utc) AS last_utc,"
     " max(n_calls) AS n_calls, CASE max(CASE grade WHEN 'act' THEN 2 WHEN 'look' THEN 1 ELSE 0 END)"
     " WHEN 2 THEN 'act' WHEN 1 THEN 'look' ELSE '' END AS grade,"
@@ -168,12 +168,12 @@ const struct sheet_table report_tables[] = {
      .heads = {"@UTC", "phase", "why", "clause", "job"},
      .sql = phases_sql},
     {.title = "Contacts",
-     .remark = "As each last stood; its grade is the strongest it had. Distances from the source: the "
-               "median, and the "
-               "range that holds nine of ten.",
+     .remark =
+         "As each stood at its last change; calls that changed nothing are not counted here. The grade is "
+         "the strongest it had. Distances from the source: the median, and the range that holds nine of ten.",
      .empty = "There was no contact.",
-     .heads = {"#contact", "group", "grade", "@from", "@to", "#calls", "#distance m", "#between m",
-               "#P(inside)", "ended as"},
+     .heads = {"#contact", "group", "grade", "@from", "@last change", "then", "#calls", "#distance m",
+               "#between m", "#P(inside)"},
      .sql = contacts_sql},
     {.title = "What people entered",
      .remark = "In the order in which the watch took it.",
