@@ -3,6 +3,7 @@
  * never closes a stream, for that can hang too: it is ended by its parent, or leaves by _exit. */
 #include "capture/options.h"
 #include "capture/shared.h"
+#include <fcntl.h>
 #include <pa_linux_alsa.h>
 #include <portaudio.h>
 #include <signal.h>
@@ -32,14 +33,40 @@ static int take(const void *input, void *output, unsigned long n_frames, const P
 /* The devices with inputs: a table for people, or all in one line for a message. */
 static void list_devices(FILE *out, bool one_line)
 {
+    unsigned n_listed = 0;
     if (!one_line)
         fprintf(out, "%6s  %8s  %10s  %s\n", "number", "channels", "rate in Hz", "name");
     for (PaDeviceIndex i = 0; i < Pa_GetDeviceCount(); i++) {
         const PaDeviceInfo *device = Pa_GetDeviceInfo(i);
-        if (device && device->maxInputChannels > 0)
-            fprintf(out, one_line ? " %d (%d channels, %.0f Hz) \"%s\"," : "%6d  %8d  %10.0f  %s\n", i,
+        if (!device || device->maxInputChannels < 1)
+            continue;
+        if (one_line)
+            fprintf(out, "%s %d (%d channels, %.0f Hz) \"%s\"", n_listed ? "," : "", i,
                     device->maxInputChannels, device->defaultSampleRate, device->name);
+        else
+            fprintf(out, "%6d  %8d  %10.0f  %s\n", i, device->maxInputChannels, device->defaultSampleRate,
+                    device->name);
+        n_listed++;
     }
+    if (n_listed == 0)
+        fputs(one_line ? " none" : "There is no device with inputs.\n", out);
+}
+
+/* People who ask for the list get the list: the libraries below PortAudio complain at length of every device
+ * that the machine does not have. */
+static PaError initialize_quietly(void)
+{
+    int error_output = dup(STDERR_FILENO), nowhere = open("/dev/null", O_WRONLY | O_CLOEXEC);
+    if (error_output >= 0 && nowhere >= 0)
+        dup2(nowhere, STDERR_FILENO);
+    PaError error = Pa_Initialize();
+    if (error_output >= 0) {
+        dup2(error_output, STDERR_FILENO);
+        close(error_output);
+    }
+    if (nowhere >= 0)
+        close(nowhere);
+    return error;
 }
 
 /* The device with this number, this name, or alone this part of a name; paNoDevice. */
@@ -72,7 +99,7 @@ static int start(const struct capture_options *options, struct ring *ring, PaStr
         fprintf(stderr,
                 "hushwatch-capture: no one device with inputs is \"%s\"; known are:", options->device);
         list_devices(stderr, true);
-        fputs(" and no more\n", stderr);
+        fputc('\n', stderr);
         return EXIT_WRONG_USE;
     }
     const PaDeviceInfo *device = Pa_GetDeviceInfo(input.device);
@@ -113,7 +140,7 @@ int main(int argc, char **argv)
         return EXIT_WRONG_USE;
     setenv("JACK_NO_START_SERVER", "1", 0); /* asking whether there is a JACK server must not start one */
     PaAlsa_SetNumPeriods(PERIODS);
-    PaError error = Pa_Initialize();
+    PaError error = options.list ? initialize_quietly() : Pa_Initialize();
     if (error != paNoError) {
         fprintf(stderr, "hushwatch-capture: PortAudio: %s\n", Pa_GetErrorText(error));
         return EXIT_FAILED;
