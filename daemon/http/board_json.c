@@ -195,7 +195,9 @@ void board_json_urgent(struct text *text, const struct watch_view *watch, const 
     json_text(text, "clause", watch->phase_clause);
     json_text(text, "job", watch->job);
     json_flag(text, "source_heard", watch->source_heard);
-    json_text(text, "source_said", phase_text(watch->source_said));
+    /* People enter 'stopped'; what becomes of it, a break or a shutdown, is the phase's to say. */
+    json_text(text, "source_said",
+              watch->source_said == PHASE_BREAK ? "stopped" : phase_text(watch->source_said));
     json_flag(text, "release_possible", watch->release_possible);
     json_text(text, "released_by", watch->released_by);
     text_append(text, "}");

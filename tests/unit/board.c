@@ -44,6 +44,7 @@ static void fill(struct watch_view *watch, struct hearing_view *hearing)
 {
     watch->watch_ns = 90 * TIME_NS_PER_S;
     watch->phase = PHASE_SOFT_START;
+    watch->source_said = PHASE_BREAK;
     watch->n_contacts = 1;
     watch->contacts[0] = (struct watch_contact){.contact = {.contact = 7,
                                                             .group = GROUP_PORPOISE,
@@ -91,6 +92,9 @@ static void a_snapshot_says_what_the_views_say(void **state)
     const struct snapshot *snapshot = board_take(board);
     json_t *root = parse(snapshot->json, snapshot->json_length);
     assert_near(json_number_value(json_object_get(root, "watch_s")), 90, 0);
+    /* the word that people enter, as the note's table has it */
+    assert_string_equal(json_string_value(json_object_get(json_object_get(root, "phase"), "source_said")),
+                        "stopped");
     assert_string_equal(json_string_value(json_object_get(json_object_get(root, "phase"), "phase")),
                         "soft start");
     json_t *advice = json_array_get(json_object_get(root, "advice"), 0);
