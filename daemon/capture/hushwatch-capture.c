@@ -3,7 +3,6 @@
  * never closes a stream, for that can hang too: it is ended by its parent, or leaves by _exit. */
 #include "capture/options.h"
 #include "capture/shared.h"
-#include <fcntl.h>
 #include <pa_linux_alsa.h>
 #include <portaudio.h>
 #include <signal.h>
@@ -50,23 +49,6 @@ static void list_devices(FILE *out, bool one_line)
     }
     if (n_listed == 0)
         fputs(one_line ? " none" : "There is no device with inputs.\n", out);
-}
-
-/* People who ask for the list get the list: the libraries below PortAudio complain at length of every device
- * that the machine does not have. */
-static PaError initialize_quietly(void)
-{
-    int error_output = dup(STDERR_FILENO), nowhere = open("/dev/null", O_WRONLY | O_CLOEXEC);
-    if (error_output >= 0 && nowhere >= 0)
-        dup2(nowhere, STDERR_FILENO);
-    PaError error = Pa_Initialize();
-    if (error_output >= 0) {
-        dup2(error_output, STDERR_FILENO);
-        close(error_output);
-    }
-    if (nowhere >= 0)
-        close(nowhere);
-    return error;
 }
 
 /* The device with this number, this name, or alone this part of a name; paNoDevice. */
@@ -140,9 +122,14 @@ int main(int argc, char **argv)
         return EXIT_WRONG_USE;
     setenv("JACK_NO_START_SERVER", "1", 0); /* asking whether there is a JACK server must not start one */
     PaAlsa_SetNumPeriods(PERIODS);
-    PaError error = options.list ? initialize_quietly() : Pa_Initialize();
+    /* Who asks for the list gets the list: what lies below PortAudio complains at length of every device that
+     * the machine does not have. */
+    int own_words = dup(STDERR_FILENO);
+    if (options.list && !freopen("/dev/null", "w", stderr))
+        return EXIT_FAILED;
+    PaError error = Pa_Initialize();
     if (error != paNoError) {
-        fprintf(stderr, "hushwatch-capture: PortAudio: %s\n", Pa_GetErrorText(error));
+        dprintf(own_words, "hushwatch-capture: PortAudio: %s\n", Pa_GetErrorText(error));
         return EXIT_FAILED;
     }
     if (options.list) {
