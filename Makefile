@@ -14,7 +14,7 @@ endif
 
 PACKAGES = gcc make pkg-config portaudio19-dev libfftw3-dev libmicrohttpd-dev libsqlite3-dev libsndfile1-dev \
 	libconfig-dev libjansson-dev libsodium-dev libsystemd-dev
-TEST_PACKAGES = libcmocka-dev libasound2-dev libasound2-plugins python3 python3-numpy python3-scipy python3-selenium \
+TEST_PACKAGES = binutils procps git libcmocka-dev libasound2-dev libasound2-plugins python3 python3-numpy python3-scipy python3-selenium \
 	chromium chromium-driver sqlite3 openssl curl clang libclang-rt-14-dev
 
 WARNINGS = -Wall -Wextra -Wshadow -Wconversion -Wstrict-prototypes -Wmissing-prototypes -Wvla
