@@ -3,6 +3,7 @@
 #include "call/tones_judge.h"
 #include "call/tones_trace.h"
 #include "dsp/decimate.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -283,6 +284,23 @@ static float limit(float pascals)
     return isfinite(pascals) ? copysignf(MOST_PA, pascals) : 0;
 }
 
+/* Copies n samples, those in range as they are. */
+static void take_limited(const float *pascals, uint32_t n, float *out)
+{
+    const lanes most = lanes_all(MOST_PA);
+    uint32_t i = 0;
+    while (i < n) {
+        for (; i + LANES <= n; i += LANES) {
+            const lanes x = lanes_load(pascals + i);
+            if (lanes_any(~(lanes_size(x) <= most)))
+                break;
+            lanes_store(out + i, x);
+        }
+        for (uint32_t end = i + LANES < n ? i + LANES : n; i < end; i++)
+            out[i] = fabsf(pascals[i]) <= MOST_PA ? pascals[i] : limit(pascals[i]);
+    }
+}
+
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink)
 {
     if (n > 0)
@@ -290,9 +308,7 @@ void tones_push(struct tones *tones, const float *pascals, uint32_t n, const str
     while (n > 0) {
         uint64_t left = tones->slice_end - tones->next_frame;
         uint32_t take = n < left ? n : (uint32_t)left;
-        float *slice = tones->slice + tones->n_held;
-        for (uint32_t i = 0; i < take; i++)
-            slice[i] = fabsf(pascals[i]) <= MOST_PA ? pascals[i] : limit(pascals[i]);
+        take_limited(pascals, take, tones->slice + tones->n_held);
         pascals += take;
         n -= take;
         tones->n_held += take;

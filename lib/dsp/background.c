@@ -1,5 +1,6 @@
 /* Adaptive background of a spectrum; see background.h. */
 #include "dsp/background.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -10,6 +11,7 @@
 #define RISE_DB_S 0.5            /* at which a bin that is always above goes up */
 #define FIRST_STEP_DB 6.0        /* of the first frames, then of the n-th a share that falls with n */
 #define READY_S 1.0
+#define LEAST 1e-30F          /* of a quantile: digital silence */
 #define RESTART_RATIO 10.0F   /* a rise of all that is heard, while learning, begins anew */
 #define BROADBAND_SPEED 4.0   /* of learning, while all of a stretch has risen */
 #define STRETCH 32            /* bins whose median over frequency tells broadband sound */
@@ -115,10 +117,36 @@ static void prepare_step(struct background *background)
 
 static void learn(const float *power, float *quantile, uint32_t n, struct step step)
 {
-    for (uint32_t k = 0; k < n; k++) {
-        float next = quantile[k] * (power[k] > quantile[k] ? step.up : step.down);
-        quantile[k] = next > 1e-30F ? next : 1e-30F;
+    uint32_t k = 0;
+    for (; k + LANES <= n; k += LANES) {
+        const lanes before = lanes_load(quantile + k);
+        const lanes by =
+            lanes_choose(lanes_load(power + k) > before, lanes_all(step.up), lanes_all(step.down));
+        lanes_store(quantile + k, lanes_greatest(before * by, lanes_all(LEAST)));
     }
+    for (; k < n; k++) {
+        float next = quantile[k] * (power[k] > quantile[k] ? step.up : step.down);
+        quantile[k] = next > LEAST ? next : LEAST;
+    }
+}
+
+/* What the quantiles say of the mean, and how many of the n bins hold more than broadband sound would. */
+static uint32_t expect(const float *power, const float *quantile, uint32_t n, float scale, float *level)
+{
+    lane_mask above = {0};
+    uint32_t k = 0, n_above = 0;
+    for (; k + LANES <= n; k += LANES) {
+        const lanes mean = lanes_load(quantile + k) * scale;
+        above -= lanes_load(power + k) > BROADBAND_RATIO * mean;
+        lanes_store(level + k, mean);
+    }
+    for (uint32_t lane = 0; lane < LANES; lane++)
+        n_above += (uint32_t)above[lane];
+    for (; k < n; k++) {
+        level[k] = quantile[k] * scale;
+        n_above += power[k] > BROADBAND_RATIO * level[k];
+    }
+    return n_above;
 }
 
 /* While learning: whether most bins hold much more than was thought (the sound has only now begun). */
@@ -144,11 +172,8 @@ static float median(const float *ratio, uint32_t n)
 }
 
 /* Returns whether the stretch was raised. */
-static bool raise_broadband(const float *power, float *level, uint32_t n)
+static bool raise_broadband(const float *power, float *level, uint32_t n, uint32_t n_above)
 {
-    uint32_t n_above = 0;
-    for (uint32_t k = 0; k < n; k++)
-        n_above += power[k] > BROADBAND_RATIO * level[k];
     if (n < 8 || 2 * n_above <= n)
         return false;
     float ratio[STRETCH];
@@ -172,9 +197,8 @@ void background_push(struct background *background, const float *power, float *o
     for (uint32_t i = 0; i < n_stretches; i++) {
         uint32_t low = n * i / n_stretches, high = n * (i + 1) / n_stretches;
         float *quantile = background->quantile + low;
-        for (uint32_t k = low; k < high; k++)
-            out_background[k] = background->quantile[k] * scale;
-        bool raised = raise_broadband(power + low, out_background + low, high - low);
+        uint32_t n_above = expect(power + low, quantile, high - low, scale, out_background + low);
+        bool raised = raise_broadband(power + low, out_background + low, high - low, n_above);
         learn(power + low, quantile, high - low, raised ? background->fast_step : background->step);
     }
     background->n_frames++;

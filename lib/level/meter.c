@@ -1,6 +1,7 @@
 /* Levels of one channel, one a second. */
 #include "level/meter.h"
 #include "base/units.h"
+#include "dsp/lanes.h"
 #include "level/decidecades.h"
 #include "level/second_cells.h"
 #include <math.h>
@@ -132,8 +133,8 @@ static void push_hop(struct meter *meter)
         meter->know_offset = true;
     }
     const float offset = meter->offset_pa;
-    for (uint32_t i = 0; i < meter->hop; i++)
-        x[i] -= offset;
+    for (uint32_t i = 0; i < meter->hop; i += LANES) /* a hop is a power of two */
+        lanes_store(x + i, lanes_load(x + i) - offset);
     decidecades_push(meter->decidecades, x);
     meter->fill = meter->counted = 0;
 }
