@@ -352,6 +352,7 @@ export class Alarm {
     this.at = 0;
   }
   set(key, pattern, once = false) {
+    if (!soundArmed()) return (this.key = ""); // what could not sound sounds as soon as it can
     const now = performance.now();
     if (key && (key !== this.key || (!once && now - this.at >= this.againMs))) {
       play(pattern);
