@@ -24,8 +24,10 @@ struct spectrum {
 
 static double window_value(enum window_shape shape, double x)
 {
+    if (shape == WINDOW_RECTANGLE)
+        return 1.0;
     double s = sin(M_PI * x);
-    return shape == WINDOW_HANN ? s * s : shape == WINDOW_SINE ? s : 1.0;
+    return shape == WINDOW_HANN ? s * s : s;
 }
 
 static float *aligned_floats(size_t n)
