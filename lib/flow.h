@@ -199,6 +199,9 @@ struct source_outcome {
     double back_db, back_low_db, back_high_db; /* energy source level; NAN where it has no meaning */
     char model[NOTE_NAME_SIZE];                /* the loss law */
     double n_db;
+    double insertion_db, insertion_low_db,
+        insertion_high_db; /* broadband, of the quieting measure; NAN where unknown */
+    bool quieting_on;
     char reason[FLOW_TEXT_SIZE]; /* why a number is missing */
 };
 

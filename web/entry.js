@@ -18,6 +18,7 @@ const KINDS = {
   Source: { kind: "source state", fields: () => [select("source_state", "The source is now", SOURCE_STATES)] },
   Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "Open or close", ["open", "close"])] },
   Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 })] },
+  Quieting: { kind: "quieting", fields: () => [select("answer", "The measure is", ["on", "off"]), { name: "text", label: "Which", maxlength: 100 }] },
   Remark: { kind: "remark", fields: () => [{ name: "text", label: "Remark", required: true, maxlength: 200, wide: true }] },
   Mark: { kind: "mark", fields: () => [{ name: "text", label: "What was it?", required: true, maxlength: 200, wide: true }] },
 };

@@ -44,11 +44,15 @@ enum status body_of_source(const struct outcome *outcome, struct text *out)
     body_number(&body, "back_low_db", source->back_low_db, ROUND_DECIMALS_DB);
     body_integer(&body, "channel", source->channel);
     body_id(&body, outcome->run, outcome->stream, "source", outcome->counter);
+    body_number(&body, "insertion_db", source->insertion_db, ROUND_DECIMALS_DB);
+    body_number(&body, "insertion_high_db", source->insertion_high_db, ROUND_DECIMALS_DB);
+    body_number(&body, "insertion_low_db", source->insertion_low_db, ROUND_DECIMALS_DB);
     body_text_or_null(&body, "job", source->job);
     body_text_or_null(&body, "model", source->model);
     body_number(&body, "n_db", source->n_db, ROUND_DECIMALS_DB);
     body_integer(&body, "n_impulses", source->n_impulses);
     body_number(&body, "peak_db", source->peak_db, ROUND_DECIMALS_DB);
+    body_bool(&body, "quieting_on", source->quieting_on);
     body_number(&body, "range_m", source->range_m, ROUND_DECIMALS_M);
     body_text_or_null(&body, "reason", source->reason);
     body_number(&body, "sel_db", source->sel_db, ROUND_DECIMALS_DB);

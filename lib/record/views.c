@@ -35,7 +35,8 @@ const struct schema_object views_schema[] = {
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("n_impulses") COLUMN("range_m") COLUMN("sel_db")
         COLUMN("peak_db") COLUMN("at_750_m_db") COLUMN("at_750_m_low_db") COLUMN("at_750_m_high_db")
         COLUMN("back_db") COLUMN("back_low_db") COLUMN("back_high_db") COLUMN("model") COLUMN("n_db")
-        COLUMN("reason")),
+        COLUMN("reason") COLUMN("quieting_on") COLUMN("insertion_db") COLUMN("insertion_low_db")
+        COLUMN("insertion_high_db")),
     VIEW("call",
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")

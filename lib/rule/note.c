@@ -8,10 +8,19 @@
 #include <string.h>
 
 static const char *const kind_words[NOTE_KIND_COUNT] = {
-    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off", [NOTE_SIGHTING] = "sighting",
-    [NOTE_DISTANCE] = "distance",   [NOTE_VERDICT] = "verdict",   [NOTE_RELEASE] = "release",
-    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",           [NOTE_WEATHER] = "weather",
-    [NOTE_MARK] = "mark",           [NOTE_REMARK] = "remark",     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
+    [NOTE_SIGN_ON] = "sign-on",
+    [NOTE_SIGN_OFF] = "sign-off",
+    [NOTE_SIGHTING] = "sighting",
+    [NOTE_DISTANCE] = "distance",
+    [NOTE_VERDICT] = "verdict",
+    [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state",
+    [NOTE_JOB] = "job",
+    [NOTE_WEATHER] = "weather",
+    [NOTE_QUIETING] = "quieting",
+    [NOTE_MARK] = "mark",
+    [NOTE_REMARK] = "remark",
+    [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
 
 enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
@@ -28,7 +37,8 @@ struct field {
 
 static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
 static const char *const verdict_words[] = {"confirm", "dismiss", "left", NULL};
-static const char *const answer_words[] = {"seen", "passed", "stopped", "declined", "open", "close", NULL};
+static const char *const answer_words[] = {"seen",  "passed", "stopped", "declined", "open",
+                                           "close", "on",     "off",     NULL};
 static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
@@ -194,10 +204,13 @@ enum status note_set(struct note *note, const char *field, const char *value, co
     return STATUS_NOT_FOUND;
 }
 
+/* Each kind has its own answers. */
 static const char *missing_of_answer(const struct note *note)
 {
     bool of_job = strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0;
-    bool good = *note->answer && of_job == (note->kind == NOTE_JOB);
+    bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
+    bool good =
+        *note->answer && of_job == (note->kind == NOTE_JOB) && of_quieting == (note->kind == NOTE_QUIETING);
     return good ? NULL : "answer";
 }
 
@@ -235,6 +248,8 @@ static const char *missing_of(const struct note *note)
         return !*note->source_state ? "source_state" : NULL;
     case NOTE_JOB:
         return !*note->job ? "job" : missing_of_answer(note);
+    case NOTE_QUIETING:
+        return missing_of_answer(note);
     case NOTE_WEATHER:
         return isnan(note->sea_state) && isnan(note->visibility_m) ? "sea_state" : NULL;
     case NOTE_MARK:

@@ -20,11 +20,13 @@ enum note_kind {
     NOTE_RELEASE,         /* person: the named observer allows the start */
     NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer (seen | passed | stopped | declined) [text]
                            */
-    NOTE_SOURCE,  /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
-    NOTE_JOB,     /* job, answer (open | close) */
-    NOTE_WEATHER, /* sea_state, visibility_m */
-    NOTE_MARK,    /* text */
-    NOTE_REMARK,  /* text */
+    NOTE_SOURCE,   /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
+    NOTE_JOB,      /* job, answer (open | close) */
+    NOTE_WEATHER,  /* sea_state, visibility_m */
+    NOTE_QUIETING, /* answer (on | off): a quieting measure is at work or not; text: which, e.g. bubble
+                      curtain */
+    NOTE_MARK,     /* text */
+    NOTE_REMARK,   /* text */
     NOTE_KIND_COUNT
 };
 

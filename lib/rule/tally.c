@@ -1,6 +1,7 @@
 /* What the source's sound adds up to; see tally.h. */
 #include "rule/tally.h"
 #include "base/time.h"
+#include "level/quieting.h"
 #include "rule/tally_limits.h"
 #include <math.h>
 #include <stdio.h>
@@ -19,6 +20,8 @@ struct sums {
     double peak_db;
     bool changed;
     struct tally_limits limits;
+    struct quieting quieting; /* of the job */
+    bool said_falling;
     enum zone_grade said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */
     uint64_t n_findings;                /* said in this run */
 };
@@ -28,6 +31,7 @@ struct tally {
     struct sums *sums; /* [n_streams] */
     struct source_sea sea;
     char job[IMPULSE_JOB_SIZE];
+    bool quieting_on;
     uint32_t run;
     uint64_t n_exposures, n_sources; /* said in this run */
     int64_t said_minute;
@@ -115,6 +119,10 @@ static void take_impulse(struct tally *tally, uint32_t stream, const struct impu
                                     .level_spread_db = tally->setup.level_spread_db,
                                     .scatter_db = tally->setup.scatter_db};
     tally_limits_push(&sums->limits, impulse, &move);
+    struct quieting_impulse quieted = {
+        .on = tally->quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
+    memcpy(quieted.band_db, impulse->band_sel_db, sizeof quieted.band_db);
+    (void)quieting_push(&sums->quieting, &quieted); /* a level that is not finite says nothing of it */
 }
 
 static void take_level(struct tally *tally, uint32_t stream, const struct level *level)
@@ -140,6 +148,8 @@ static void begin_job(struct tally *tally, const char *job)
         sums->n_impulses = 0;
         sums->peak_db = -INFINITY;
         tally_limits_begin_job(&sums->limits);
+        quieting_reset(&sums->quieting);
+        sums->said_falling = false;
         memset(sums->said, 0, sizeof sums->said);
     }
 }
@@ -293,6 +303,33 @@ static void fill_numbers(const struct tally *tally, double sel_db, double range_
     out->n_db = numbers.n_db;
 }
 
+static void fill_quieting(const struct tally *tally, const struct sums *sums, struct source_outcome *out)
+{
+    struct insertion_loss loss;
+    out->quieting_on = tally->quieting_on;
+    out->insertion_db = out->insertion_low_db = out->insertion_high_db = NAN;
+    if (quieting_get(&sums->quieting, &loss) != STATUS_OK)
+        return;
+    out->insertion_db = loss.broadband.db;
+    out->insertion_low_db = loss.broadband.low_db;
+    out->insertion_high_db = loss.broadband.high_db;
+}
+
+/* A quieting measure that takes off less than it did, said once a job. */
+static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    struct sums *sums = &tally->sums[i];
+    struct finding_outcome finding = {.code = "quieting falls", .grade = "indicative"};
+    double fall_db;
+    if (sums->said_falling || !quieting_falls(&sums->quieting, &fall_db))
+        return;
+    sums->said_falling = true;
+    memcpy(finding.job, tally->job, sizeof finding.job);
+    snprintf(finding.detail, sizeof finding.detail,
+             "the quieting measure takes off %.1f dB less than in its first impulses", fall_db);
+    say_finding(tally, i, watch_ns, &finding, sink);
+}
+
 static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
     const struct sums *sums = &tally->sums[i];
@@ -306,6 +343,7 @@ static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const 
     out->sel_db = median_sel_db(sums);
     out->peak_db = finite_or_nan(sums->peak_db);
     fill_numbers(tally, out->sel_db, out->range_m, out);
+    fill_quieting(tally, sums, out);
     outcome.counter = ++tally->n_sources;
     sink->take(sink->context, &outcome);
 }
@@ -317,6 +355,7 @@ static void say_all(struct tally *tally, int64_t watch_ns, const struct outcome_
             continue;
         say_source(tally, i, watch_ns, sink);
         say_exposures(tally, i, watch_ns, sink);
+        check_quieting(tally, i, watch_ns, sink);
         tally->sums[i].changed = false;
     }
 }
@@ -333,6 +372,8 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         take_impulse(tally, event->stream, &event->as.impulse);
     else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         take_level(tally, event->stream, &event->as.level);
+    else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
+        tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {
         say_all(tally, outcome->watch_ns, sink);
         begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "");

@@ -221,6 +221,45 @@ static void a_limit_is_a_finding_once(void **state)
     criteria = whales;
 }
 
+/* A bubble curtain that takes 8 dB off: 100 impulses with and without it, scatter 1.5 dB (one seed of a
+ * Student interval that unit/quieting proves), and a warning when it takes off 5 dB less. */
+static void a_quieting_measure_is_worth_what_it_takes_off(void **state)
+{
+    (void)state;
+    struct said said = {0};
+    struct tally *tally = make_tally(750);
+    struct random random;
+    random_reset(&random, 21);
+    open_job(tally, &said, TIME_NS_PER_S);
+    for (int i = 0; i < 400; i++) {
+        int64_t at_ns = (int64_t)(10 + 2 * i) * TIME_NS_PER_S;
+        if (i == 100) {
+            struct event event = {.kind = EVENT_NOTE};
+            note_reset(&event.as.note, NOTE_QUIETING);
+            snprintf(event.as.note.answer, sizeof event.as.note.answer, "on");
+            give(tally, &said, event, at_ns);
+        }
+        double loss_db = i < 100 ? 0 : i < 250 ? 8 : 3;
+        give_blow(tally, &said, at_ns, 170 - loss_db + 1.5 * random_normal(&random), IMPULSE_OURS);
+        if (i == 249) {
+            const struct outcome_sink sink = {take, &said};
+            tally_finish(tally, at_ns, &sink);
+            assert_true(said.source.quieting_on);
+            assert_true(said.source.insertion_low_db <= 8.3 && said.source.insertion_high_db >= 7.7);
+            assert_near(said.source.insertion_db, 8, 0.6);
+            for (uint32_t f = 0; f < said.n_findings; f++)
+                assert_string_not_equal(said.findings[f].code, "quieting falls");
+        }
+    }
+    const struct outcome_sink sink = {take, &said};
+    tally_finish(tally, 1000 * TIME_NS_PER_S, &sink);
+    bool warned = false;
+    for (uint32_t f = 0; f < said.n_findings; f++)
+        warned = warned || strcmp(said.findings[f].code, "quieting falls") == 0;
+    assert_true(warned);
+    tally_destroy(tally);
+}
+
 /* What is relative is compared with no criterion. */
 static void relative_levels_count_for_nothing(void **state)
 {
@@ -249,6 +288,7 @@ int main(void)
         cmocka_unit_test(each_job_begins_anew),
         cmocka_unit_test(no_range_no_distance),
         cmocka_unit_test(a_limit_is_a_finding_once),
+        cmocka_unit_test(a_quieting_measure_is_worth_what_it_takes_off),
         cmocka_unit_test(relative_levels_count_for_nothing),
     };
     return cmocka_run_group_tests_name("tally", tests, NULL, NULL);
