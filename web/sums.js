@@ -41,7 +41,8 @@ function drawNumbers(state) {
     `Received: median SEL ${db(source.sel_db)}, highest peak ${db(source.peak_db)}, ${source.n_impulses} impulses` +
     (source.range_m === null ? ", range unknown." : ` at ${metres(source.range_m)}.`) +
     (source.at_750_m_db === null ? "" : ` At 750 m: SEL ${db(source.at_750_m_db)} (${db(source.at_750_m_low_db)} to ${db(source.at_750_m_high_db)}, 90 %; ${source.model}, N ${db(source.n_db)}).`) +
-    (source.back_db === null ? ` Source level: none${source.reason ? ", " + source.reason : ""}.` : ` Energy source level: ${db(source.back_db)}.`)));
+    (source.back_db === null ? ` Source level: none${source.reason ? ", " + source.reason : ""}.` : ` Energy source level: ${db(source.back_db)}.`) +
+    (source.quieting_on ? " Quieting is on" + (source.insertion_db === null ? "." : `: it takes off ${db(source.insertion_db)} (${db(source.insertion_low_db)} to ${db(source.insertion_high_db)}) dB.`) : "")));
 }
 
 function drawCriteria(state) {

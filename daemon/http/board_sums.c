@@ -44,6 +44,10 @@ static void source(struct text *text, const struct source_outcome *source)
     json_number(text, "at_750_m_low_db", source->at_750_m_low_db, ROUND_DECIMALS_DB);
     json_number(text, "at_750_m_high_db", source->at_750_m_high_db, ROUND_DECIMALS_DB);
     json_number(text, "back_db", source->back_db, ROUND_DECIMALS_DB);
+    json_number(text, "insertion_db", source->insertion_db, ROUND_DECIMALS_DB);
+    json_number(text, "insertion_low_db", source->insertion_low_db, ROUND_DECIMALS_DB);
+    json_number(text, "insertion_high_db", source->insertion_high_db, ROUND_DECIMALS_DB);
+    json_flag(text, "quieting_on", source->quieting_on);
     json_text(text, "model", source->model);
     json_number(text, "n_db", source->n_db, ROUND_DECIMALS_DB);
     json_text(text, "reason", source->reason);
