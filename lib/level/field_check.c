@@ -3,6 +3,7 @@
 #include "base/units.h"
 #include "level/percentile.h"
 #include <math.h>
+#include <stdbool.h>
 #include <string.h>
 
 enum status field_check_reset(struct field_check *check, double rate_hz, double tone_hz)
@@ -43,25 +44,30 @@ void field_check_push(struct field_check *check, const float *pascals, uint32_t 
     }
 }
 
+static bool is_clear(const struct field_check *check, uint32_t second)
+{
+    double tone = check->tone_pa2[second];
+    return tone > 0 && check->all_pa2[second] - tone <= tone * units_power_ratio(-FIELD_CHECK_CLEAR_DB);
+}
+
 enum status field_check_get(const struct field_check *check, struct field_check_result *out)
 {
-    double sorted[FIELD_CHECK_MAX_SECONDS], tone = 0, all = 0, seconds = 0;
+    double sorted[FIELD_CHECK_MAX_SECONDS] = {0}, tone = 0, all = 0, seconds = 0;
+    uint32_t n = 0;
     for (uint32_t i = 0; i < check->n_seconds; i++)
-        percentile_insert(sorted, i, units_spl_db(check->tone_pa2[i]));
-    double median = percentile_exceeded_db(sorted, check->n_seconds, 50);
+        if (is_clear(check, i))
+            percentile_insert(sorted, n++, units_spl_db(check->tone_pa2[i]));
+    double median = percentile_exceeded_db(sorted, n, 50);
     for (uint32_t i = 0; i < check->n_seconds; i++)
-        if (fabs(units_spl_db(check->tone_pa2[i]) - median) <= FIELD_CHECK_STEADY_DB) {
+        if (is_clear(check, i) && fabs(units_spl_db(check->tone_pa2[i]) - median) <= FIELD_CHECK_STEADY_DB) {
             tone += check->tone_pa2[i];
             all += check->all_pa2[i];
             seconds++;
         }
     if (seconds < FIELD_CHECK_LEAST_SECONDS)
         return STATUS_NOT_FOUND;
-    struct field_check_result result = {.measured_db = units_spl_db(tone / seconds),
-                                        .rest_db = units_spl_db(fmax(all - tone, 0) / seconds),
-                                        .seconds = seconds};
-    if (!(result.measured_db - result.rest_db >= FIELD_CHECK_CLEAR_DB))
-        return STATUS_NOT_FOUND;
-    *out = result;
+    *out = (struct field_check_result){.measured_db = units_spl_db(tone / seconds),
+                                       .rest_db = units_spl_db(fmax(all - tone, 0) / seconds),
+                                       .seconds = seconds};
     return STATUS_OK;
 }

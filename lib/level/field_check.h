@@ -1,9 +1,9 @@
 /* A field check: how loud a channel hears a tone of known level, such as a pistonphone's.
  *
  * The tone is what a Butterworth band-pass of order 2 lets through that is an octave wide about the stated
- * frequency; its level is that of the mean square of whole seconds. Seconds within 0.2 dB of their median are
- * the tone; there must be 3 or more, and everything else that is heard then must be at least 10 dB below it
- * (limits: common practice, no source). */
+ * frequency; its level is that of the mean square of whole seconds. Of the seconds in which everything else
+ * is at least 10 dB below, those within 0.2 dB of their median are the tone; there must be 3 or more (limits:
+ * common practice, no source). */
 #ifndef LEVEL_FIELD_CHECK_H
 #define LEVEL_FIELD_CHECK_H
 
