@@ -8,7 +8,7 @@ import time
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
 from daemon import Daemon  # noqa: E402
-from watch import ask, check, figure, finish, folder, settings, verify  # noqa: E402
+from watch import ROOT, ask, check, figure, finish, folder, settings, verify  # noqa: E402
 
 SCENE = """seed = 5; duration_s = 120.0; rate_hz = 48000.0;
 sea = { temperature_c = 11.0; salinity = 34.0; depth_m = 20.0; wind_m_s = 3.0; shipping = 0.2; };
@@ -49,7 +49,8 @@ def live(place):
           '{ role = "measure"; sensitivity_db = -170.0; full_scale_v = 10.0; }'
     config = settings(place + "/site.cfg", permit="tests/system/seconds-permit.cfg", channels=two,
                       stream='input = "scene"; path = "scene.cfg"; pace = "real";',
-                      more='silence_s = 10.0; pages = { port = 0; }; contact = { gap_s = 6.0; act_evidence = 1.5; };')
+                      more='silence_s = 10.0; pages = { port = 0; }; contact = { gap_s = 6.0; act_evidence = 1.5; };'
+                      'source = { criteria = ["%s/config/criteria/nmfs-2024.cfg"]; };' % ROOT)
     daemon = Daemon(config)
     with daemon:
         stop = daemon.wait_for(lambda s: (daemon.advice("crew", s) or {}).get("advice") == "stop", 40)
@@ -104,6 +105,9 @@ def in_order(ledger, end_s):
     notes = [row[0] for row in ask(ledger, "SELECT json_extract(body, '$.note') FROM entry WHERE kind = 'note' ORDER BY seq")]
     check("the acknowledgement is in the ledger, once", notes.count("acknowledgement") == 1, notes)
     check("two runs, and the outage between them is told", len(ask(ledger, "SELECT seq FROM run")) == 2)
+    blows = ask(ledger, "SELECT count(*) FROM impulse WHERE whose = 'ours'")[0]
+    said = ask(ledger, "SELECT n_impulses FROM source ORDER BY seq DESC LIMIT 1")
+    check("the job's sum goes on over the restart", said and said[0][0] == blows[0] > 15, (said, blows))
     done = verify(ledger)
     check("the ledger verifies", done.returncode == 0, done.stdout)
 
