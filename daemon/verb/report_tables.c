@@ -119,8 +119,14 @@ static const char health_sql[] =
 static const char calibration_sql[] =
     "SELECT DISTINCT stream, name, channel, role, serial, CASE WHEN known THEN 'yes' ELSE 'NO: relative' END,"
     " CASE WHEN known THEN sensitivity_db END, CASE WHEN known THEN gain_db END,"
-    " CASE WHEN known THEN full_scale_v END, CASE WHEN known THEN printf('%.1f', clip_db) END"
-    " FROM calibration ORDER BY stream, channel";
+    " CASE WHEN known THEN full_scale_v END, CASE WHEN known THEN printf('%.1f', clip_db) END,"
+    " CASE WHEN self_noise_db IS NOT NULL THEN printf('%.1f', self_noise_db) END, due_date"
+    " FROM calibration WHERE what = 'stated' ORDER BY stream, channel";
+
+static const char field_checks_sql[] =
+    "SELECT " WHEN("utc") ", stream, channel, serial, tone_hz, tone_db, measured_db, printf('%+.2f', difference_db),"
+    " CASE WHEN change_db IS NOT NULL THEN printf('%+.2f', change_db) END, seconds"
+    " FROM calibration WHERE what = 'field check' ORDER BY seq";
 
 static const char permit_sql[] =
     "SELECT permit, title, document, year, CASE WHEN demonstration THEN 'NO: a demonstration' ELSE 'yes' END,"
@@ -201,8 +207,14 @@ const struct sheet_table report_tables[] = {
     {.title = "Calibration",
      .empty = "No calibration was recorded: every level is relative.",
      .heads = {"#stream", "name", "#channel", "role", "serial", "known", "#sensitivity dB re 1 V/uPa",
-               "#gain dB", "#full scale V", "#clips at dB re 1 uPa"},
+               "#gain dB", "#full scale V", "#clips at dB re 1 uPa", "#self-noise dB re 1 uPa", "due"},
      .sql = calibration_sql},
+    {.title = "Field checks",
+     .remark = "A tone of known level, as each hydrophone heard it with its stated sensitivity; dB re 1 uPa.",
+     .empty = "None.",
+     .heads = {"@UTC", "#stream", "#channel", "serial", "#tone Hz", "#given dB", "#measured dB",
+               "#difference dB", "#change since the last", "#seconds"},
+     .sql = field_checks_sql},
     {.title = "Permit",
      .empty = "The ledger holds no permit.",
      .heads = {"permit", "title", "document", "#year", "for work", "SHA-256 of its text"},

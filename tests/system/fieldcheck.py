@@ -75,6 +75,9 @@ def field_checks(folder):
     check("each is a run of its own", [row[0] for row in ask(ledger, "SELECT command FROM run")] == ["fieldcheck"] * 2)
     done = tool("verify", ledger)
     check("the ledger is good", done.returncode == 0, done.stdout + done.stderr)
+    done = tool("report", ledger, "--sheet", folder + "/sheet.html")
+    page = open(folder + "/sheet.html").read() if done.returncode == 0 else done.stderr
+    check("a report shows both", all(word in page for word in ("Field checks", "+0.30", "-0.10", "-0.40")), page[:2000])
     sound(folder + "/noise.wav", numpy.random.default_rng(6).normal(0, 10, 12 * RATE))
     done = tool(*options, folder + "/noise.wav")
     check("noise is no tone", done.returncode == 1 and "no steady and clear tone" in done.stderr, done.stderr)
