@@ -3,7 +3,6 @@
 #include <sodium.h>
 #include <stdio.h>
 #include <string.h>
-#include <unistd.h>
 
 enum status files_read(const char *path, struct text *out)
 {
@@ -57,15 +56,4 @@ void files_cpu_name(char *out, size_t size)
     }
     if (file)
         fclose(file);
-}
-
-void files_beside_program(const char *name, char *out, size_t size)
-{
-    char program[512];
-    ssize_t n = readlink("/proc/self/exe", program, sizeof program - 1);
-    program[n > 0 ? n : 0] = '\0';
-    char *slash = strrchr(program, '/');
-    if (slash)
-        slash[1] = '\0';
-    snprintf(out, size, "%s%s", program, name);
 }

@@ -11,7 +11,5 @@ enum status files_read(const char *path, struct text *out);
 void files_build_id(char out[65]);
 /* The processor's name, or "unknown". */
 void files_cpu_name(char *out, size_t size);
-/* Appends the path of a file that lies beside the program itself. */
-void files_beside_program(const char *name, char *out, size_t size);
 
 #endif

@@ -14,8 +14,6 @@ struct ledger {
     sqlite3_stmt *find, *insert;
     struct ledger_tail tail; /* as last committed; of a writer */
     bool doubtful;           /* a commit failed: open again and read where the file stands */
-    double time_limit_s;
-    int64_t deadline_ns; /* of the call that runs now, by the monotonic clock */
 };
 
 /* Takes PATH.lock; STATUS_BUSY with the other's process number in the problem, STATUS_SYSTEM. */

@@ -30,8 +30,6 @@ enum status handle_status(int sqlite_result)
     case SQLITE_CORRUPT:
     case SQLITE_NOTADB:
         return STATUS_BAD_FORMAT;
-    case SQLITE_INTERRUPT:
-        return STATUS_TIMEOUT;
     default:
         return STATUS_SYSTEM;
     }

@@ -69,13 +69,9 @@ struct ledger_query {
 };
 
 /* Calls take for each; a status other than STATUS_OK from it ends the reading and is returned.
- * STATUS_BAD_FORMAT damaged; STATUS_TIMEOUT after the time limit; STATUS_BUSY, STATUS_NO_MEMORY,
+ * STATUS_BAD_FORMAT damaged; STATUS_BUSY, STATUS_NO_MEMORY,
  * STATUS_SYSTEM. */
 enum status ledger_read(struct ledger *ledger, const struct ledger_query *query,
-                        enum status (*take)(void *context, const struct entry *entry), void *context);
-
-/* The entry with this id; STATUS_NOT_FOUND. take is called once. */
-enum status ledger_find(struct ledger *ledger, const char *id,
                         enum status (*take)(void *context, const struct entry *entry), void *context);
 
 /* Runs one SELECT over the views with up to n text parameters (?1, ?2 ...) and calls take for each row, with
@@ -84,9 +80,6 @@ enum status ledger_select(struct ledger *ledger, const char *sql, size_t n_param
                           const char *const *parameters,
                           enum status (*take)(void *context, int n_columns, const char *const *columns),
                           void *context);
-
-/* A reader's calls give up with STATUS_TIMEOUT when one takes longer; 0 for no limit. */
-void ledger_set_time_limit(struct ledger *ledger, double seconds);
 
 /* Compares the schema with what the program itself defines, and lets SQLite check the file's own structure;
  * calls fault once for each difference, with a sentence. */

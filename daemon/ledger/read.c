@@ -1,5 +1,4 @@
 /* Reading: entries in order, one by id, rows of the views, and whether the schema is the program's own. */
-#include "clock.h"
 #include "ledger/handle.h"
 #include "record/views.h"
 #include <errno.h>
@@ -84,26 +83,6 @@ enum status handle_open_reading(struct ledger *ledger, char problem[LEDGER_PROBL
     return status == STATUS_SYSTEM ? open_at_rest(ledger, problem) : status;
 }
 
-/* ---- time limit */
-
-static int past_limit(void *context)
-{
-    const struct ledger *ledger = context;
-    return clock_monotonic_ns() > ledger->deadline_ns;
-}
-
-void ledger_set_time_limit(struct ledger *ledger, double seconds)
-{
-    ledger->time_limit_s = seconds;
-    sqlite3_progress_handler(ledger->db, 1000, seconds > 0 ? past_limit : NULL, ledger);
-}
-
-static void start_limit(struct ledger *ledger)
-{
-    if (ledger->time_limit_s > 0)
-        ledger->deadline_ns = clock_monotonic_ns() + (int64_t)(ledger->time_limit_s * 1e9);
-}
-
 /* ---- entries */
 
 static const char *column(sqlite3_stmt *statement, int i)
@@ -113,21 +92,17 @@ static const char *column(sqlite3_stmt *statement, int i)
 }
 
 /* Steps through "seq, utc, kind, body, hash" rows and finalizes. */
-static enum status give_entries(struct ledger *ledger, sqlite3_stmt *statement,
-                                enum status (*take)(void *context, const struct entry *entry), void *context,
-                                uint64_t *out_count)
+static enum status give_entries(sqlite3_stmt *statement,
+                                enum status (*take)(void *context, const struct entry *entry), void *context)
 {
     enum status status = STATUS_OK;
     int result = SQLITE_ROW;
-    start_limit(ledger);
-    *out_count = 0;
     while (status == STATUS_OK && (result = sqlite3_step(statement)) == SQLITE_ROW) {
         struct entry entry = {.seq = sqlite3_column_int64(statement, 0),
                               .utc = column(statement, 1),
                               .kind = column(statement, 2),
                               .body = column(statement, 3),
                               .hash = column(statement, 4)};
-        (*out_count)++;
         status = take(context, &entry);
     }
     sqlite3_finalize(statement);
@@ -153,23 +128,7 @@ enum status ledger_read(struct ledger *ledger, const struct ledger_query *query,
         sqlite3_bind_text(statement, 3, query->kind, -1, SQLITE_STATIC);
     if (query->limit > 0)
         sqlite3_bind_int64(statement, 4, query->limit);
-    uint64_t count;
-    return give_entries(ledger, statement, take, context, &count);
-}
-
-enum status ledger_find(struct ledger *ledger, const char *id,
-                        enum status (*take)(void *context, const struct entry *entry), void *context)
-{
-    static const char sql[] =
-        "SELECT seq, utc, kind, body, hash FROM entry WHERE " VIEWS_ID_SQL " = ?1 ORDER BY seq LIMIT 1";
-    sqlite3_stmt *statement;
-    int result = sqlite3_prepare_v2(ledger->db, sql, -1, &statement, NULL);
-    if (result != SQLITE_OK)
-        return handle_status(result);
-    sqlite3_bind_text(statement, 1, id, -1, SQLITE_STATIC);
-    uint64_t count;
-    enum status status = give_entries(ledger, statement, take, context, &count);
-    return status == STATUS_OK && count == 0 ? STATUS_NOT_FOUND : status;
+    return give_entries(statement, take, context);
 }
 
 enum status ledger_select(struct ledger *ledger, const char *sql, size_t n_parameters,
@@ -183,7 +142,6 @@ enum status ledger_select(struct ledger *ledger, const char *sql, size_t n_param
         return handle_status(result);
     for (size_t i = 0; i < n_parameters; i++)
         sqlite3_bind_text(statement, (int)i + 1, parameters[i], -1, SQLITE_STATIC);
-    start_limit(ledger);
     enum status status = STATUS_OK;
     while (status == STATUS_OK && (result = sqlite3_step(statement)) == SQLITE_ROW) {
         const char *columns[MAX_COLUMNS];
