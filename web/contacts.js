@@ -39,7 +39,7 @@ function create(contact) {
   const card = el("li", { class: "card", tabindex: "-1" },
     el("p", { class: "card_head" }, el("strong"), el("span", { class: "grade" }), el("span", { class: "state soft" })),
     el("p", { class: "countdown", hidden: true }), el("p", { class: "where" }), el("p", { class: "evidence soft" }),
-    el("p", { class: "actions", role: "group", "aria-label": "Contact " + contact.contact }, action("confirm", "Confirm"), action("dismiss", "Dismiss…"), action("distance", "Distance…"), action("left", "Left…")),
+    el("p", { class: "actions", role: "group", "aria-label": "Contact " + contact.contact }, action("confirm", "Confirm"), action("dismiss", "Dismiss"), action("distance", "Distance"), action("left", "Left")),
     el("div", { class: "card_form" }));
   card.querySelector(".actions").addEventListener("click", (event) => event.target.dataset.form && openForm(card, event.target.dataset.form));
   return card;

@@ -2,7 +2,7 @@
 // A fault is shown beside the instruction and never in its place; only 'carry on' and 'may start' are withdrawn.
 import {
   $, Alarm, adviceFor, adviceWords, answerOf, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
-  remember, remembered, sentence, setShape, setText, span, startPalette, startSound, utc, watchNow,
+  remember, remembered, sentence, setShape, setText, span, startPalette, startSound, untilLeft, untilTitle, utc, watchNow,
 } from "/page.js";
 
 const station = new URLSearchParams(location.search).get("station") || "crew";
@@ -53,11 +53,11 @@ function showFacts(advice, found) {
   setText($("since"), advice ? utc(advice.since_s) + " UTC" : "–");
   setText($("since_more"), advice ? local(advice.since_s) + " local · " + span(watchNow() - advice.since_s) + " ago" : "");
   const until = advice && advice.until_s !== null ? advice.until_s : null;
-  const starts = advice && ["do not start", "may start"].includes(advice.advice);
-  setText($("until_title"), starts ? "Earliest start" : "Earliest restart");
-  const left = until === null ? 0 : until - watchNow();
-  setText($("until"), until === null ? (!advice || advice.advice === "carry on" ? "–" : advice.advice === "may start" ? "now" : "when allowed") : utc(until) + " UTC");
-  const wait = until === null ? "" : local(until) + " local · " + (left > 0 ? "in " + span(left) : "now, if all else is met") + ". ";
+  const title = advice ? untilTitle(advice.advice) : "";
+  $("ends").hidden = !title;
+  setText($("until_title"), title);
+  setText($("until"), until !== null ? utc(until) + " UTC" : advice && ["may start", "resume"].includes(advice.advice) ? "now" : "when allowed");
+  const wait = until === null ? "" : local(until) + " local · " + untilLeft(advice.advice, until - watchNow()) + ". ";
   setText($("requires"), wait + (advice && advice.requires ? "Requires: " + advice.requires + "." : ""));
 }
 
@@ -67,7 +67,7 @@ function showAnswer(advice, withdrawn) {
   const button = $("acknowledge"), mine = asks ? answerOf(advice, station) : null;
   button.hidden = !asks || Boolean(mine);
   button.disabled = asks && sending === advice.id;
-  let text = problem;
+  let text = problem || (asks ? "" : "Nothing to acknowledge now.");
   if (mine) text = "Acknowledged by " + (mine.person || "?") + (mine.answer ? " (" + mine.answer + ")" : "") + " at " + utc(mine.time_s) + " UTC.";
   else if (asks && !problem && advice.acknowledgements.length)
     text = advice.acknowledgements.map((answer) => answer.station).join(", ") + " acknowledged; " + station + " has not yet.";

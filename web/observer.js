@@ -1,7 +1,7 @@
 // The observer's page: distance first, what was heard, what is allowed, what the source does, how well we hear.
 import {
   $, Alarm, adviceFor, adviceWords, clock, connect, el, faults, keyed, link, loadPermit, plainWords, remains, remembered,
-  remember, sentence, setShape, setText, span, startPalette, startSound, stationAnswers, utc, watchNow,
+  remember, sentence, setShape, setText, span, startPalette, startSound, stationAnswers, untilLeft, untilTitle, utc, watchNow,
 } from "/page.js";
 import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
@@ -35,8 +35,11 @@ function drawAdvice(advice, withdrawn) {
   if (advice && !advice.recorded) tags.push("not yet recorded");
   keyed($("tags"), withdrawn ? [] : tags, (text) => text, (text) => el("span", { class: "tag", text }), () => {});
   setText($("since"), advice ? utc(advice.since_s) + " UTC, " + span(watchNow() - advice.since_s) + " ago" : "–");
-  const until = advice ? advice.until_s : null;
-  setText($("until"), until === null ? "–" : utc(until) + " UTC" + (until > watchNow() ? ", in " + span(until - watchNow()) : ""));
+  const until = advice ? advice.until_s : null, title = advice && !withdrawn ? untilTitle(advice.advice) : "";
+  $("until").parentNode.hidden = !title || until === null;
+  setText($("until_title"), title);
+  setText($("until"), until === null ? "–" : utc(until) + " UTC, " + untilLeft(advice.advice, until - watchNow()));
+  $("requires").parentNode.hidden = !(advice && advice.requires) || withdrawn;
   setText($("requires"), (advice && advice.requires) || "–");
   document.title = (advice && !withdrawn ? words.words + " – " : "") + "Observer";
 }

@@ -77,6 +77,20 @@ export function plainWords(word, activity) {
   return (PLAIN[activity] || {})[word] || PLAIN.any[word] || "";
 }
 
+/** What the time beside an advice means; nothing where there is none to wait for. */
+const UNTIL = {
+  "do not start": "Earliest start", "may start": "Start", "stop": "Earliest restart", "new soft start": "Earliest restart",
+  "resume": "Resume before", "hold power": "Earliest end", "reduce power": "Earliest end", "prepare to stop": "Earliest end",
+};
+export function untilTitle(word) {
+  return UNTIL[word] || "";
+}
+/** "in 4:10", "now, if all else is met"; of a time to resume by "4:10 left". */
+export function untilLeft(word, left) {
+  if (word === "resume") return left > 0 ? span(left) + " left" : "that time is over";
+  return left > 0 ? "in " + span(left) : "now, if all else is met";
+}
+
 const SHAPES = {
   octagon: "M30 4H70L96 30V70L70 96H30L4 70V30Z",
   triangle: "M50 6L97 92H3Z",

@@ -1,7 +1,8 @@
 /* Serves the pages from filled structures, for tests of the pages and the server alone.
  *
  * board_server [PORT]: prints "port N", then obeys words on standard input, one a line:
- *   quiet | pre-watch | ready | delay | stop | hold | may-start | carry-on   show that situation
+ *   quiet | pre-watch | ready | delay | stop | hold | may-start | soft-start | carry-on | resume
+ *                       show that situation
  *   deaf | hear         the stream hears nothing | hears again
  *   freeze | thaw       nothing is published any more | again
  *   disk-full | disk-ok entries do not reach the disk | do again
@@ -188,6 +189,15 @@ static bool show_calm(struct server *server, const char *word)
         set_phase(server, PHASE_READY, "released by Ada Lind", "clause 3.4");
         both(server, ADVICE_MAY_START, "Pre-watch complete; released by Ada Lind", "clause 3.4", 0,
              "a soft start of at least 2 minutes");
+    } else if (strcmp(word, "soft-start") == 0) {
+        set_phase(server, PHASE_SOFT_START, "the crew says: soft start", "clause 5.1");
+        add_timer(server, "soft start", 31, 120, "");
+        both(server, ADVICE_CARRY_ON, "Soft start: nothing asks for a change", "clause 5.1", 0, "");
+    } else if (strcmp(word, "resume") == 0) {
+        set_phase(server, PHASE_BREAK, "the source is silent", "clause 6.1");
+        both(server, ADVICE_RESUME,
+             "The zone is clear: the source may resume while the silence is at most 10 min", "clause 6.1",
+             480, "");
     } else if (strcmp(word, "carry-on") == 0) {
         set_phase(server, PHASE_FULL_POWER, "the soft start is complete", "clause 5.1");
         both(server, ADVICE_CARRY_ON, "Nothing is heard or seen inside the zone", "clause 5.1", 0, "");

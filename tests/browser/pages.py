@@ -184,6 +184,23 @@ def reload_keeps(server, observer, crew):
     check(crew.script("return document.getElementById('person').value") == "Bo Sand", "the person's name is remembered")
 
 
+def times_beside(server, observer, crew):
+    """What the time beside an advice means is said: a time to resume by is no earliest restart, and carry on has none."""
+    for word, title in [("stop", "Earliest restart"), ("pre-watch", "Earliest start"), ("hold", "Earliest end"), ("resume", "Resume before"),
+                        ("carry-on", None), ("soft-start", None)]:
+        server.say(word)
+        crew.until("return document.getElementById('%s').hidden === %s" % ("ends", "false" if title else "true"), 2)
+        time.sleep(0.4)
+        shown = [crew.shown("#until_title"), observer.shown("#until_title")]
+        check(shown == [title, title], word + ": " + (title or "no time to wait for"), shown)
+        if not title:
+            page = crew.script("return document.body.innerText") + observer.script("return document.body.innerText")
+            check("Earliest" not in page, word + ": no 'Earliest' on either page")
+        if word == "resume":
+            check("left" in crew.text("#requires") and "left" in observer.text("#until"), "and how much of it is left", crew.text("#requires"))
+    server.say("stop")
+
+
 def agree(server, observer, crew):
     watch = """
         window.changes = [];
@@ -294,7 +311,7 @@ def contrast(observer):
 
 
 def sizes(server, observer, crew):
-    for width, height in [(800, 600), (1280, 720), (1920, 1080), (600, 900), (3840, 2160)]:
+    for width, height in [(800, 600), (1366, 768), (683, 384), (1920, 1080), (600, 900), (3840, 2160)]:  # 683 x 384: 1366 x 768 at 200 %
         for word in ("stop", "pre-watch"):
             server.say(word)
             crew.size(width, height)
@@ -310,8 +327,16 @@ def sizes(server, observer, crew):
             tall = crew.script("return parseFloat(getComputedStyle(document.getElementById('words')).fontSize)")
             check(tall >= min(height / 13, width / 13), "crew, %s, %d x %d: the words are large" % (word, width, height), tall)
         crew.picture("crew-%dx%d" % (width, height))
-    server.say("delay")
-    for width, height in [(800, 600), (1280, 720), (1920, 1080), (3840, 2160), (400, 800)]:
+    server.say("stop", "deaf", "disk-full")
+    for width, height in [(683, 384), (800, 600), (1366, 768)]:
+        crew.size(width, height)
+        time.sleep(0.6)
+        rows = crew.script("return ['faults', 'words', 'acknowledge'].map((id) => { const r = document.getElementById(id).getBoundingClientRect(); return [r.top, r.bottom] })")
+        check(rows[0][1] <= rows[1][0] and rows[1][1] <= rows[2][0] and rows[2][1] <= height,
+              "crew, %d x %d: faults, instruction and button are all in sight" % (width, height), rows)
+        crew.picture("crew-faults-%dx%d" % (width, height))
+    server.say("hear", "disk-ok", "delay")
+    for width, height in [(800, 600), (1366, 768), (683, 384), (1920, 1080), (3840, 2160), (400, 800)]:
         observer.size(width, height)
         time.sleep(0.6)
         wide = observer.script("return [document.documentElement.scrollWidth, innerWidth]")
@@ -345,6 +370,7 @@ def main():
         enter(server, observer)
         crew_answers(server, crew)
         reload_keeps(server, observer, crew)
+        times_beside(server, observer, crew)
         agree(server, observer, crew)
         sizes(server, observer, crew)
         observer.size(1920, 1080)
