@@ -2,6 +2,7 @@
 #include "call/trigger.h"
 #include "base/units.h"
 #include "call/noise_rate.h"
+#include "call/window_median.h"
 #include "dsp/lanes.h"
 #include <math.h>
 #include <stdbool.h>
@@ -11,20 +12,11 @@
 #define MAX_ECHO_S 0.03
 #define FALL 10.0            /* a pulse is over when its window has fallen by this ratio (10 dB) */
 #define RISE 4.0             /* a new pulse in the tail of another must rise by this ratio (6 dB) */
-#define SETTLE_WINDOWS 64    /* windows that set the first background */
 #define FROZEN_LENGTHS 8     /* a background stands still for so many longest pulses, then goes on */
 #define GUARD_DEVIATIONS 2.5 /* benefit of the doubt for a guard band of which noise is all we see */
 #define GUARD_MARGIN 2       /* slots: the two filters are not equally late */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
-#define FLOOR_PA2 1e-30      /* below any background: digital silence */
 enum trigger_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
-
-/* The running median of a band's windows, as the mean power it stands for. */
-struct background {
-    double mean_pa2;
-    double median_ratio; /* median over mean of the window's power in Gaussian noise */
-    double deviation;    /* relative standard deviation of a window */
-};
 
 struct trigger {
     struct trigger_setup setup;
@@ -33,14 +25,13 @@ struct trigger {
     uint32_t guard_window, guard_after; /* slots in all, and after the peak */
     double threshold;                   /* ratio of a window's power to the background */
     double guard_ratio;
-    double steps[2]; /* of the medians: down, up */
     struct noise_table noise;
     double echo_frames;
     bool has_guard;
 
     enum trigger_state state;
-    struct background band, guard;
-    float settle[2][SETTLE_WINDOWS];
+    struct window_median band, guard;
+    float settle[2][WINDOW_MEDIAN_SETTLE];
     uint32_t n_settled, frozen_slots;
     uint32_t run; /* windows since one lay on the other side of the median */
     bool run_above;
@@ -87,14 +78,6 @@ double trigger_get_echo(const struct call_class *call_class)
     return fmin(MAX_ECHO_S, call_class->train.min_interval_s / 4);
 }
 
-/* Median over mean of chi-square with that many degrees of freedom: Wilson and Hilferty (1931). */
-static struct background background_of(double freedom)
-{
-    struct background background = {.median_ratio = pow(1 - 2 / (9 * freedom), 3),
-                                    .deviation = sqrt(2 / freedom)};
-    return background;
-}
-
 enum status trigger_create(const struct trigger_setup *setup, struct trigger **out)
 {
     struct trigger *trigger = calloc(1, sizeof *trigger);
@@ -114,14 +97,12 @@ enum status trigger_create(const struct trigger_setup *setup, struct trigger **o
     enum status status = bands_get_statistics(setup->bands, setup->band, trigger->window, &band);
     if (status == STATUS_OK && trigger->has_guard)
         status = bands_get_statistics(setup->bands, setup->guard, trigger->guard_window, &guard);
-    trigger->band = background_of(band.freedom);
-    trigger->guard = background_of(guard.freedom);
     noise_table_fill(&band, shape->pulse_s, &trigger->noise);
     /* A step of 0.002 at 0.1 ms keeps the median within 0.1 dB and lets it follow 87 dB/s; longer windows
        step more, since there are fewer. */
     double step = fmin(0.05, 0.002 * fmax(1, sqrt(shape->pulse_s / 1e-4)));
-    trigger->steps[false] = 1 / (1 + step);
-    trigger->steps[true] = 1 + step;
+    trigger->band = window_median_of(band.freedom, step);
+    trigger->guard = window_median_of(guard.freedom, step);
     trigger->echo_frames = trigger_get_echo(setup->call_class) * setup->rate_hz * setup->frames_per_frame;
     trigger->sums = calloc(setup->block_slots, sizeof *trigger->sums);
     if (status != STATUS_OK || !trigger->sums) {
@@ -140,28 +121,8 @@ void trigger_reset(struct trigger *trigger)
     trigger->n_slots = 0;
     trigger->energy = 0;
     trigger->holds = false;
-    trigger->band.mean_pa2 = trigger->guard.mean_pa2 = FLOOR_PA2;
-}
-
-static int compare_floats(const void *a, const void *b)
-{
-    float x = *(const float *)a, y = *(const float *)b;
-    return (x > y) - (x < y);
-}
-
-static void settle(struct background *background, float *windows)
-{
-    qsort(windows, SETTLE_WINDOWS, sizeof *windows, compare_floats);
-    background->mean_pa2 = fmax(FLOOR_PA2, windows[SETTLE_WINDOWS / 2] / background->median_ratio);
-}
-
-/* Gives the side of the median on which the window lies: either is as likely, so no branch hangs on it. */
-static bool follow(const struct trigger *trigger, struct background *background, double window_pa2)
-{
-    bool above = window_pa2 > background->mean_pa2 * background->median_ratio;
-    double mean_pa2 = background->mean_pa2 * trigger->steps[above];
-    background->mean_pa2 = mean_pa2 > FLOOR_PA2 ? mean_pa2 : FLOOR_PA2;
-    return above;
+    window_median_reset(&trigger->band);
+    window_median_reset(&trigger->guard);
 }
 
 static double sum_slots(const float *power, uint32_t n)
@@ -193,19 +154,19 @@ static void learn(struct trigger *trigger, int64_t slot, const float *band, cons
             return; /* the filters are still filling */
         trigger->settle[0][trigger->n_settled] = (float)window_power(band, slot, trigger->window);
         trigger->settle[1][trigger->n_settled] = (float)guard_power;
-        if (++trigger->n_settled < SETTLE_WINDOWS)
+        if (++trigger->n_settled < WINDOW_MEDIAN_SETTLE)
             return;
-        settle(&trigger->band, trigger->settle[0]);
+        window_median_settle(&trigger->band, trigger->settle[0]);
         if (trigger->has_guard)
-            settle(&trigger->guard, trigger->settle[1]);
+            window_median_settle(&trigger->guard, trigger->settle[1]);
         trigger->state = IDLE;
         return;
     }
     if (trigger->state != IDLE && trigger->frozen_slots < FROZEN_LENGTHS * trigger->max_open)
         return;
-    bool above = follow(trigger, &trigger->band, trigger->sums[slot]);
+    bool above = window_median_follow(&trigger->band, trigger->sums[slot]);
     if (trigger->has_guard)
-        follow(trigger, &trigger->guard, guard_power);
+        window_median_follow(&trigger->guard, guard_power);
     trigger->run = trigger->run * (above == trigger->run_above) + 1;
     trigger->run_above = above;
     if (trigger->run >= RUN) {

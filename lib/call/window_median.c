@@ -1,0 +1,41 @@
+/* Running median of a band's windows. */
+#include "call/window_median.h"
+#include <math.h>
+#include <stdlib.h>
+
+#define FLOOR_PA2 1e-30 /* below any background: digital silence */
+
+/* Median over mean of chi-square with that many degrees of freedom: Wilson and Hilferty (1931). */
+struct window_median window_median_of(double freedom, double step)
+{
+    return (struct window_median){.mean_pa2 = FLOOR_PA2,
+                                  .median_ratio = pow(1 - 2 / (9 * freedom), 3),
+                                  .deviation = sqrt(2 / freedom),
+                                  .steps = {1 / (1 + step), 1 + step}};
+}
+
+void window_median_reset(struct window_median *median)
+{
+    median->mean_pa2 = FLOOR_PA2;
+}
+
+static int compare_floats(const void *a, const void *b)
+{
+    float x = *(const float *)a, y = *(const float *)b;
+    return (x > y) - (x < y);
+}
+
+void window_median_settle(struct window_median *median, float *windows)
+{
+    qsort(windows, WINDOW_MEDIAN_SETTLE, sizeof *windows, compare_floats);
+    median->mean_pa2 = fmax(FLOOR_PA2, windows[WINDOW_MEDIAN_SETTLE / 2] / median->median_ratio);
+}
+
+/* Either side is as likely, so no branch hangs on it. */
+bool window_median_follow(struct window_median *median, double window_pa2)
+{
+    const bool above = window_pa2 > median->mean_pa2 * median->median_ratio;
+    const double mean_pa2 = median->mean_pa2 * median->steps[above];
+    median->mean_pa2 = mean_pa2 > FLOOR_PA2 ? mean_pa2 : FLOOR_PA2;
+    return above;
+}

@@ -1,0 +1,27 @@
+/* The running median of a band's windows, as the mean power it stands for: stepped up or down by a small
+ * ratio with each window (trigger.h says why). */
+#ifndef CALL_WINDOW_MEDIAN_H
+#define CALL_WINDOW_MEDIAN_H
+
+#include <stdbool.h>
+
+#define WINDOW_MEDIAN_SETTLE 64 /* windows that set the first one */
+
+/* Plain data. */
+struct window_median {
+    double mean_pa2;
+    double median_ratio; /* median over mean of the window's power in Gaussian noise */
+    double deviation;    /* relative standard deviation of a window */
+    double steps[2];     /* ratios: down, up */
+};
+
+/* For windows with so many degrees of freedom (bands.h), and steps of 1 + step. */
+struct window_median window_median_of(double freedom, double step);
+/* Forgets the sound: below any background. */
+void window_median_reset(struct window_median *median);
+/* Starts from [WINDOW_MEDIAN_SETTLE] powers of windows, which it sorts. */
+void window_median_settle(struct window_median *median, float *windows);
+/* Follows one more window; gives whether it lies above the median. */
+bool window_median_follow(struct window_median *median, double window_pa2);
+
+#endif
