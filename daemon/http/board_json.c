@@ -83,7 +83,7 @@ static void values(struct text *text, const struct permit *permit)
         json_text(text, "key", value->key);
         json_text(text, "value", value->text);
         json_text(text, "mark", permit_mark_text(value->mark));
-        json_flag(text, "unverified", value->mark != MARK_READ);
+        json_flag(text, "unverified", mark_unverified(value->mark));
         json_text(text, "source", value->source);
         text_append(text, "}");
     }

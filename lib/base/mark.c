@@ -1,4 +1,4 @@
-/* Words for marks. */
+/* Marks: see mark.h. */
 #include "base/mark.h"
 
 const char *mark_text(enum value_mark mark)
@@ -6,4 +6,9 @@ const char *mark_text(enum value_mark mark)
     static const char *const words[MARK_COUNT] = {"read",           "secondary",   "memory, high",
                                                   "memory, medium", "memory, low", "invented"};
     return (unsigned)mark < MARK_COUNT ? words[mark] : "";
+}
+
+bool mark_unverified(enum value_mark mark)
+{
+    return mark != MARK_READ;
 }

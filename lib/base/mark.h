@@ -2,6 +2,8 @@
 #ifndef BASE_MARK_H
 #define BASE_MARK_H
 
+#include <stdbool.h>
+
 enum value_mark {
     MARK_READ,
     MARK_SECONDARY,
@@ -14,5 +16,8 @@ enum value_mark {
 
 /* "read", "secondary", "memory, high", "memory, medium", "memory, low", "invented"; never NULL. */
 const char *mark_text(enum value_mark mark);
+
+/* Whether people must check the value against the document before they rely on it: it was not read there. */
+bool mark_unverified(enum value_mark mark);
 
 #endif

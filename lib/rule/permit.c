@@ -214,14 +214,3 @@ enum status permit_check(const struct permit *permit, uint32_t n, char out_probl
     check_values(&search, permit);
     return search.seen > n ? STATUS_OUT_OF_RANGE : STATUS_OK;
 }
-
-const struct permit_value *permit_unverified(const struct permit *permit, uint32_t n)
-{
-    for (uint32_t i = 0; i < permit->n_values && i < PERMIT_MAX_VALUES; i++) {
-        enum value_mark mark = permit->values[i].mark;
-        bool memory = mark == MARK_MEMORY_HIGH || mark == MARK_MEMORY_MEDIUM || mark == MARK_MEMORY_LOW;
-        if (memory && n-- == 0)
-            return &permit->values[i];
-    }
-    return NULL;
-}

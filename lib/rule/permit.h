@@ -100,9 +100,6 @@ struct permit {
  * problem; STATUS_OK when there are no more. */
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE]);
 
-/* The n-th value that nobody has checked against the document (its mark is a memory), NULL after the last. */
-const struct permit_value *permit_unverified(const struct permit *permit, uint32_t n);
-
 /* Words of the file and of pages; never NULL. */
 const char *permit_action_text(enum permit_action action);
 const char *permit_activity_text(enum permit_activity activity); /* "piling", "seismic", "explosives" */
