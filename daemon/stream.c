@@ -96,8 +96,11 @@ static void take_block(void *context, const struct block *block)
 {
     struct stream *stream = context;
     const struct event_sink sink = {take_event, stream};
-    if (listen_push(stream->listen, block, &sink) != STATUS_OK)
+    if (listen_push(stream->listen, block, &sink) != STATUS_OK) {
+        pthread_mutex_lock(&stream->lock);
         stream->state.status = STATUS_BUG;
+        pthread_mutex_unlock(&stream->lock);
+    }
     merge_progress(stream->merge, stream->setup.number, listen_get_time(stream->listen));
 }
 
