@@ -48,7 +48,7 @@ void chain_check(struct site *site, struct problems *problems)
         const struct input_kind *kind = input_find(site->streams[i].input);
         struct input_facts facts;
         void *input = NULL;
-        if (!kind || strcmp(kind->name, "device") == 0 || strcmp(kind->name, "pcm") == 0)
+        if (!kind || !kind->is_file)
             continue;
         if (kind->open(&site->streams[i], problems, &input, &facts) == STATUS_OK)
             kind->close(input);

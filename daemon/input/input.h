@@ -26,9 +26,10 @@ struct input_piece {
     uint32_t n_frames;    /* 0 with lost_before > 0: only silence of the input, by the clock */
 };
 
-/* A person's note that the input itself carries on its timetable (a scene's): see next_note. */
+/* One kind of input: what it is called, and how it is read. */
 struct input_kind {
     const char *name;
+    bool is_file; /* can be opened to look at it, and nobody else notices */
     /* STATUS_OK and an object the caller closes, or another status after adding problems that name what is
      * wrong (file, what, what is allowed; for an unknown device the known ones). */
     enum status (*open)(const struct stream_settings *settings, struct problems *problems, void **out,
