@@ -26,9 +26,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->run = 1;
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
-    watch->source.said = PHASE_OFF;
-    watch->source.said_ns = watch->source.impulse_ns = watch->source.blow_ns = -1;
-    watch->source.soft_start_ns = watch->source.quiet_ns = -1;
+    source_reset(&watch->source);
     *out = watch;
     return STATUS_OK;
 }
@@ -98,10 +96,10 @@ static void set_recent(struct watch *watch, const struct event *event)
     why_add_cause(&watch->recent, id);
 }
 
-static void complete(const struct watch *watch, struct event *event)
+static void complete(struct watch *watch, struct event *event)
 {
     if (event->kind == EVENT_IMPULSE)
-        source_mark_impulse(watch, &event->as.impulse);
+        source_mark_impulse(watch, event->stream, &event->as.impulse);
     if (event->kind == EVENT_NOTE) {
         event->as.note.known_ns = event->known_ns;
         if (event->as.note.occurred_ns == 0)

@@ -16,6 +16,7 @@
 #include "rule/contact.h"
 #include "rule/spans.h"
 #include "rule/watch.h"
+#include "rule/whose.h"
 
 #define WATCH_MAX_CHANNELS (WATCH_MAX_STREAMS * FLOW_MAX_CHANNELS)
 
@@ -63,6 +64,8 @@ struct source {
     uint32_t unallowed_contact; /* whose stop was not followed; 0 for none */
     char job[IMPULSE_JOB_SIZE];
     uint32_t n_impulses;
+    int64_t on_ns; /* when it was last said to sound after silence; -1 */
+    struct whose whose[WATCH_MAX_CHANNELS];
 };
 
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
@@ -154,11 +157,12 @@ int64_t effort_ready_ns(const struct watch *watch);
 void effort_names(const struct watch *watch, char out[FLOW_TEXT_SIZE]);
 
 /* watch_source.c */
+void source_reset(struct source *source);
 bool source_sounds(enum phase phase);
 void source_note(struct watch *watch, const struct note *note);
 void source_job(struct watch *watch, const struct note *note);
 /* Whose impulse it is, and of which job: before the event goes out. */
-void source_mark_impulse(const struct watch *watch, struct impulse *impulse);
+void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *impulse);
 void source_take_impulse(struct watch *watch, const struct event *event);
 void source_settle(struct watch *watch); /* silence, and a soft start that is too long */
 int64_t source_due_ns(const struct watch *watch);

@@ -28,6 +28,15 @@ bool source_sounds(enum phase phase)
     }
 }
 
+void source_reset(struct source *source)
+{
+    source->said = PHASE_OFF;
+    source->said_ns = source->impulse_ns = source->blow_ns = source->on_ns = -1;
+    source->soft_start_ns = source->quiet_ns = -1;
+    for (size_t i = 0; i < WATCH_MAX_CHANNELS; i++)
+        whose_reset(&source->whose[i]);
+}
+
 void source_note(struct watch *watch, const struct note *note)
 {
     static const struct {
@@ -49,6 +58,8 @@ void source_note(struct watch *watch, const struct note *note)
     struct source *source = &watch->source;
     for (size_t i = 0; i < sizeof states / sizeof states[0]; i++)
         if (strcmp(note->source_state, states[i].word) == 0) {
+            if (source_sounds(states[i].said) && !source_sounds(source->said))
+                source->on_ns = watch->now_ns;
             source->said = states[i].said;
             source->said_ns = watch->now_ns;
             source->contradicted = false;
@@ -71,11 +82,26 @@ void source_job(struct watch *watch, const struct note *note)
         note_without_effect(watch, "job %.31s is not open", note->job);
 }
 
-void source_mark_impulse(const struct watch *watch, struct impulse *impulse)
+/* By its energy, or by its peak where that is all there is. */
+static double level_of(const struct impulse *impulse)
 {
-    const struct source *source = &watch->source;
-    bool ours = *source->job && source_sounds(source->said);
-    impulse->whose = ours ? IMPULSE_OURS : IMPULSE_UNKNOWN;
+    return isfinite(impulse->sel_db) ? impulse->sel_db : isfinite(impulse->peak_db) ? impulse->peak_db : NAN;
+}
+
+void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *impulse)
+{
+    struct source *source = &watch->source;
+    /* Levels of channels cannot be compared: each has its own trains. Unknown ones share the first's. */
+    bool known = stream >= 1 && stream <= WATCH_MAX_STREAMS && impulse->channel >= 1 &&
+                 impulse->channel <= FLOW_MAX_CHANNELS;
+    size_t place = known ? (stream - 1) * FLOW_MAX_CHANNELS + impulse->channel - 1 : 0;
+    const struct whose_said said = {.on = source_sounds(source->said),
+                                    .job = *source->job != '\0',
+                                    .on_ns = source->on_ns,
+                                    .said_ns = source->said_ns};
+    const struct whose_impulse heard = {
+        .time_ns = impulse->time_ns, .level_db = level_of(impulse), .expected_ns = -1};
+    impulse->whose = whose_take(&source->whose[place], &said, &heard);
     snprintf(impulse->job, sizeof impulse->job, "%s", source->job);
 }
 
@@ -124,6 +150,8 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     struct source *source = &watch->source;
     const struct impulse *impulse = &event->as.impulse;
     bool of_job = *source->job != '\0', quiet_said = !source_sounds(source->said);
+    if (impulse->whose == IMPULSE_OTHERS)
+        return; /* another's hammer neither starts our work nor hides that ours has stopped */
     bool late = source->said_ns >= 0 && impulse->time_ns <= source->said_ns + GRACE_NS;
     source->heard = true;
     if (impulse->time_ns > source->impulse_ns)
