@@ -160,7 +160,7 @@ static double time_likelihood(const struct whose_train *train, int64_t time_ns, 
     *out_phase = WHOSE_OFF_RHYTHM;
     for (uint32_t i = 0; i < kept(train) && i < ANCHORS; i++) {
         double after = time_to_s(time_ns - train->time_ns[i]), steps = round(after / interval);
-        if (steps < 1 + i || since < 0.5 * interval)
+        if (steps < 1 + i || steps > FARTHEST_STEPS + i || since < 0.5 * interval)
             continue;
         double sigma = spread * interval * sqrt(steps), away = after - steps * interval;
         double likelihood = (1 - SHARE_OFF) * pow(SHARE_MISSED, steps - 1 - i) * normal(away, sigma);
