@@ -85,9 +85,13 @@ static enum status open_streams(struct chain *chain, struct problems *problems)
     return first;
 }
 
+/* The ledger's sentences name the file where it matters; the others begin with it here. */
 static void say_ledger_problem(struct chain *chain, struct problems *problems, const char *problem)
 {
-    problems_add(problems, chain->setup.site->ledger, 0, "", "%s", problem);
+    const char *path = chain->setup.site->ledger;
+    size_t length = strlen(path);
+    bool named = strncmp(problem, path, length) == 0 && problem[length] == ':';
+    problems_add(problems, path, 0, "", "%s", named ? problem + length + 2 : problem);
 }
 
 static enum status open_ledger(struct chain *chain, struct problems *problems)

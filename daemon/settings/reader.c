@@ -11,7 +11,10 @@ static void add_line(struct problems *problems, const char *file, unsigned line,
 {
     char what[768];
     vsnprintf(what, sizeof what, format, arguments);
-    text_format(&problems->lines, "%s:%u: %s%s%s\n", file, line, key, *key ? ": " : "", what);
+    text_append(&problems->lines, file);
+    if (line > 0)
+        text_format(&problems->lines, ":%u", line);
+    text_format(&problems->lines, ": %s%s%s\n", key, *key ? ": " : "", what);
     problems->count++;
 }
 
@@ -237,6 +240,11 @@ unsigned group_numbers(struct group_reader *group, const char *key, bool require
 bool group_text_at(struct group_reader *group, const char *key, unsigned i, char *value, size_t size)
 {
     config_setting_t *member = ask(group, key, READER_OPTIONAL);
+    if (member && !config_setting_is_array(member) && !config_setting_is_list(member)) {
+        if (i == 0)
+            group_problem(group, key, "is not an array of texts; allowed: [\"...\", ...]");
+        return false;
+    }
     if (!member || i >= (unsigned)config_setting_length(member))
         return false;
     bool good = text_fits(group, key, config_setting_get_elem(member, i), value, size);

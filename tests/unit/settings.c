@@ -55,7 +55,7 @@ static void all_errors_of_meaning_come_at_once(void **state)
                "legder = \"trial.ledger\";\n"
                "permit = \"p\";\n"
                "calls = \"c\";\n"
-               "pages = { port = 70000; address = \"10.0.0.1\"; };\n"
+               "pages = { port = 70000; address = \"10.0.0.1\"; stations = \"bridge\"; };\n"
                "streams = ( { input = \"microphone\"; rate_hz = 96000.5;\n"
                "  channels = ( { role = \"both\"; sensitivity_db = -180.0; } ); } );\n");
     assert_int_equal(site_load(path, &problems, &site), STATUS_BAD_FORMAT);
