@@ -45,6 +45,7 @@ struct contact {
     int64_t word_ns;           /* when an observer on watch last vouched for it or confirmed it; -1 */
     enum permit_action order;  /* the strongest that went to the crew while the source sounded: it stays */
 
+    int64_t said_ns;       /* watch time of its newest entry */
     char id[FLOW_ID_SIZE]; /* of its newest entry */
     uint32_t n_causes;     /* newest calls, sightings and verdicts */
     char causes[CONTACT_MAX_CAUSES][FLOW_ID_SIZE];

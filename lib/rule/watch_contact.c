@@ -60,6 +60,9 @@ static void add_evidence(const struct watch *watch, struct contact *contact, dou
     contact->evidence_ns = watch->now_ns;
 }
 
+/* While it calls, a contact's count of calls in the ledger is at most this old. */
+#define CONTACT_BEAT_NS (30 * TIME_NS_PER_S)
+
 void contact_take_call(struct watch *watch, const struct event *event)
 {
     const struct call *call = &event->as.call;
@@ -88,7 +91,8 @@ void contact_take_call(struct watch *watch, const struct event *event)
     forget_old_distance(watch, contact, when_ns);
     contact_add_cause(contact, watch->recent.causes[0]);
     contact_detect(contact, watch->permit, when_ns);
-    if (raise_grade(watch, contact) || is_new || reopened || was_known != contact->where.known)
+    bool beat = watch->now_ns - contact->said_ns >= CONTACT_BEAT_NS;
+    if (raise_grade(watch, contact) || is_new || reopened || was_known != contact->where.known || beat)
         watch_say_contact(watch, contact);
 }
 

@@ -66,6 +66,7 @@ void watch_say_contact(struct watch *watch, struct contact *contact)
     struct outcome outcome;
     start_outcome(watch, OUTCOME_CONTACT, &outcome);
     outcome.as.contact = contact_outcome(contact, watch->permit, watch->now_ns);
+    contact->said_ns = watch->now_ns;
     give(watch, &outcome, contact->id);
 }
 
