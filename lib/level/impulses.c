@@ -40,6 +40,7 @@ struct finder_window {
     uint64_t start, trigger, loud; /* cells: first, triggered, last one above the close threshold */
     double highest_short;          /* levels so far */
     double highest, lowest_since;  /* long level: highest, lowest since it */
+    double weak_highest;           /* the highest before it first fell by NEXT_RATIO; 0 until then */
 };
 
 struct impulse_finder {
@@ -281,6 +282,15 @@ static void learn_anew(struct impulse_finder *finder)
         background_learn(&finder->background, cells_get(&finder->cells, finder->cells.next + 1 - k));
 }
 
+/* A weak blow of somebody else just before, which has died away again: the window is the strong one's, from
+ * where that begins. Together they would look like a sound that grows, and that is no impulse. */
+static bool restarts(struct finder_window *window, const struct cell *cell)
+{
+    if (window->weak_highest <= 0 && window->highest >= NEXT_RATIO * window->lowest_since)
+        window->weak_highest = window->highest;
+    return window->weak_highest > 0 && cell->long_level > window->weak_highest / WEAKER;
+}
+
 static void follow_window(struct impulse_finder *finder, const struct cell *cell,
                           const struct impulse_sink *sink)
 {
@@ -288,6 +298,11 @@ static void follow_window(struct impulse_finder *finder, const struct cell *cell
     const uint64_t now = finder->cells.next;
     if (background_passes(cell, finder->background.close))
         window->loud = now;
+    if (restarts(window, cell)) {
+        finder->rejections.echo++;
+        open_window(finder, now - BACK, true);
+        return;
+    }
     window->highest_short = fmax(window->highest_short, cell->short_level);
     if (cell->long_level > window->highest && now - window->trigger < NEXT)
         window->highest = window->lowest_since = cell->long_level;
