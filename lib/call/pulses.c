@@ -343,14 +343,6 @@ bool pulses_is_hearable(const struct pulses *pulses, uint32_t class_index)
     return false;
 }
 
-double pulses_get_background(const struct pulses *pulses, uint32_t class_index)
-{
-    for (uint32_t e = 0; e < pulses->n_ears; e++)
-        if (pulses->ears[e].class_index == class_index)
-            return trigger_get_background(pulses->ears[e].trigger);
-    return 0;
-}
-
 void pulses_get_rejections(const struct pulses *pulses, uint64_t out[][REJECT_COUNT])
 {
     for (uint32_t e = 0; e < pulses->n_ears; e++)

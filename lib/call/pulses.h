@@ -40,8 +40,6 @@ void pulses_finish(struct pulses *pulses, const struct found_sink *sink);
 void pulses_hide(struct pulses *pulses, double start_frame, double end_frame, double low_hz, double high_hz);
 /* False for a tone class and for a class that the rate cannot carry. */
 bool pulses_is_hearable(const struct pulses *pulses, uint32_t class_index);
-/* Mean square of the background in a class's band, Pa2; 0 where the class is not hearable. */
-double pulses_get_background(const struct pulses *pulses, uint32_t class_index);
 /* Adds up since create, out[class_index][rejection]; rows of other classes are left alone. */
 void pulses_get_rejections(const struct pulses *pulses, uint64_t out[][REJECT_COUNT]);
 void pulses_destroy(struct pulses *pulses);

@@ -371,11 +371,6 @@ void trigger_finish(struct trigger *trigger, const struct pulse_sink *sink)
     give_held(trigger, sink);
 }
 
-double trigger_get_energy(const struct trigger *trigger)
-{
-    return trigger->energy;
-}
-
 double trigger_get_background(const struct trigger *trigger)
 {
     return trigger->band.mean_pa2;

@@ -54,8 +54,7 @@ void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64
 void trigger_finish(struct trigger *trigger, const struct pulse_sink *sink);
 /* Input frame, counted from the last reset, before which no pulse will come any more. */
 double trigger_get_known(const struct trigger *trigger);
-/* The band's energy since the last reset, Pa2 times input frames, and its background's mean square, Pa2. */
-double trigger_get_energy(const struct trigger *trigger);
+/* Mean square of the band's background, Pa2. */
 double trigger_get_background(const struct trigger *trigger);
 /* Pulses a second that white Gaussian noise gives at this snr (ratio) or more: window_upcrossings. */
 double trigger_get_noise_rate(const struct trigger *trigger, double snr);

@@ -58,11 +58,6 @@ void background_destroy(struct background *background)
     free(background);
 }
 
-void background_reset(struct background *background)
-{
-    background->n_frames = 0;
-}
-
 bool background_is_ready(const struct background *background)
 {
     return (double)background->n_frames >= READY_S * background->frames_per_s;

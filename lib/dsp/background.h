@@ -20,8 +20,6 @@ struct background;
 /* STATUS_BAD_ARGUMENT for no bins or a rate that is not positive. */
 enum status background_create(uint32_t n_bins, double frames_per_s, struct background **out);
 void background_destroy(struct background *background);
-/* Forgets everything. */
-void background_reset(struct background *background);
 /* The mean power of each bin that is expected without a call in this frame, [n_bins], both ways; then learns
  * from the frame. */
 void background_push(struct background *background, const float *power, float *out_background);

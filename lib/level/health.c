@@ -53,13 +53,6 @@ struct health {
     uint64_t last_check;          /* frame after the last check; 0: none */
 };
 
-const char *health_cause_text(enum health_cause cause)
-{
-    static const char *const texts[HEALTH_CAUSE_COUNT] = {"clipping", "dead", "frozen", "too quiet",
-                                                          "duplicate"};
-    return (unsigned)cause < HEALTH_CAUSE_COUNT ? texts[cause] : "unknown";
-}
-
 enum status health_create(double rate_hz, const struct calibration *calibration, struct health **out)
 {
     if (!(rate_hz >= 8000) || !(rate_hz <= 1000000))

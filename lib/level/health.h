@@ -76,7 +76,5 @@ void health_compare(const struct health *earlier, struct health *later, const st
 /* Gives what is open. Reset must follow. */
 void health_finish(struct health *health, const struct fault_sink *sink);
 void health_get_counts(const struct health *health, struct health_counts *out);
-/* "clipping", "dead", "frozen", "too quiet", "duplicate"; never NULL. */
-const char *health_cause_text(enum health_cause cause);
 
 #endif

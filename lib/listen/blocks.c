@@ -75,13 +75,6 @@ void blocks_finish(struct blocks *blocks, const struct block_sink *sink)
         give(blocks, sink);
 }
 
-void blocks_reset(struct blocks *blocks, uint64_t next_frame)
-{
-    blocks->next_frame = next_frame;
-    blocks->lost_before = 0;
-    blocks->held = 0;
-}
-
 void blocks_destroy(struct blocks *blocks)
 {
     if (!blocks)

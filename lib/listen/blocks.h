@@ -21,8 +21,6 @@ void blocks_push(struct blocks *blocks, uint64_t lost, const float *frames, uint
                  const struct block_sink *sink);
 /* Gives the block that was being filled. */
 void blocks_finish(struct blocks *blocks, const struct block_sink *sink);
-/* Starts at another frame number; only before the first push (a restart in the middle of a recording). */
-void blocks_reset(struct blocks *blocks, uint64_t next_frame);
 void blocks_destroy(struct blocks *blocks);
 
 #endif
