@@ -14,13 +14,16 @@
 #define FEW_SPREAD_DB 1.5 /* before there are enough to learn it from */
 #define SLOW 20           /* impulses over which another's level is expected to change */
 #define SLOW_REACH 0.15   /* an interval farther off, as a share, is no change of it */
-#define ANCHORS 3         /* a rhythm is carried on from each of the last three impulses */
-#define FARTHEST_STEPS 8  /* beyond so many missed blows the phase is lost */
-#define SHARE_OFF 0.1     /* of blows that keep no rhythm */
-#define SHARE_STEP 0.06   /* of blows at which the energy is changed */
-#define SHARE_ANY 0.01    /* of blows at any level */
-#define SHARE_MISSED 0.3  /* of blows that are not heard, so that the rhythm is seen with a gap */
-#define ANY_LEVEL_DB 60.0 /* the width of "any level" */
+#define IN_STEP 0.1       /* steps out of step, on the average */
+#define FASTER 0.75
+#define SHORTEST_INTERVAL_S 0.4 /* 120 blows a minute, with room */
+#define ANCHORS 3               /* a rhythm is carried on from each of the last three impulses */
+#define FARTHEST_STEPS 8        /* beyond so many missed blows the phase is lost */
+#define SHARE_OFF 0.1           /* of blows that keep no rhythm */
+#define SHARE_STEP 0.06         /* of blows at which the energy is changed */
+#define SHARE_ANY 0.01          /* of blows at any level */
+#define SHARE_MISSED 0.3        /* of blows that are not heard, so that the rhythm is seen with a gap */
+#define ANY_LEVEL_DB 60.0       /* the width of "any level" */
 #define UNKNOWN_INTERVAL_S 10.0
 #define ROOT_TWO_PI 2.50662827463100050
 #define MAD_TO_SIGMA 1.4826 /* of a normal distribution */
@@ -52,8 +55,18 @@ static uint32_t intervals(const struct whose_train *train, double out[WHOSE_KEPT
     return n;
 }
 
+/* How far the intervals are from whole numbers of steps, in steps, on the average: 0.25 at random. */
+static double out_of_step(const double *all, uint32_t n, double step_s)
+{
+    double sum = 0;
+    for (uint32_t i = 0; i < n; i++)
+        sum += fabs(all[i] / step_s - round(all[i] / step_s));
+    return sum / n;
+}
+
 /* Missed blows make intervals of two or more: each is folded by one of the shorter ones, not the shortest,
- * which a stray impulse may have made. */
+ * which a stray impulse may have made; or by a part of it, where two of two and three show that all had a
+ * gap. */
 static uint32_t folded_intervals(const struct whose_train *train, double out[WHOSE_KEPT])
 {
     double sorted[WHOSE_KEPT];
@@ -61,6 +74,10 @@ static uint32_t folded_intervals(const struct whose_train *train, double out[WHO
     memcpy(sorted, out, n * sizeof sorted[0]);
     qsort(sorted, n, sizeof sorted[0], by_value);
     double one = n ? sorted[n / 3] : NAN;
+    for (int parts = 2; n >= 5 && parts <= 3 && out_of_step(out, n, one) > IN_STEP; parts++)
+        if (sorted[n / 3] / parts >= SHORTEST_INTERVAL_S &&
+            out_of_step(out, n, sorted[n / 3] / parts) < IN_STEP)
+            one = sorted[n / 3] / parts;
     for (uint32_t i = 0; i < n && one > 0; i++) {
         double steps = round(out[i] / one);
         out[i] /= steps > 1 ? steps : 1;
@@ -89,6 +106,8 @@ static void learn_interval(struct whose_train *train)
     double step = time_to_s(train->time_ns[0] - train->time_ns[1]), n = round(step / train->slow_s);
     if (n >= 1 && n <= FARTHEST_STEPS && fabs(step / n - train->slow_s) < SLOW_REACH * train->slow_s)
         train->slow_s += (step / n - train->slow_s) / SLOW;
+    else if (train->n >= WHOSE_KEPT && last_interval_s(train) < FASTER * train->slow_s)
+        train->slow_s = last_interval_s(train); /* what was taken for its rhythm was a part of it */
 }
 
 static double interval_spread(const struct whose_train *train, double interval_s)
@@ -198,7 +217,6 @@ void whose_train_add(struct whose_train *train, int64_t time_ns, double level_db
 #define STEP_TOLERANCE 0.08
 #define SAME_LEVEL_DB 3.0
 #define LONGEST_INTERVAL_S 310.0 /* mitigation guns fire every 5 min */
-#define SHORTEST_INTERVAL_S 0.4  /* 120 blows a minute, with room */
 
 /* The loose impulse after `from` nearest to the time, within the tolerance and at the newest's level; or 0.
  */
