@@ -16,10 +16,8 @@
 #define FADED_DB 7.0     /* below ours by so much, a rival counts no more: WHOSE_BELOW_DB and a margin */
 #define SILENT_S 60.0    /* and five intervals: then ours may go on at any level and time */
 #define SILENT_INTERVALS 5.0
-#define WAIT_INTERVALS 10.0  /* with nothing else heard for SILENT_S and so many, what is heard is ours */
-#define LEAST_INTERVAL_S 0.4 /* 120 blows a minute, with room */
-#define OUT_OF_STEP 0.03     /* of an interval: what a half or a third may be off */
-#define REMEMBERED_S 1800.0  /* another's train that has fallen silent */
+#define WAIT_INTERVALS 10.0 /* with nothing else heard for SILENT_S and so many, what is heard is ours */
+#define REMEMBERED_S 1800.0 /* another's train that has fallen silent */
 
 void whose_reset(struct whose *whose)
 {
@@ -301,20 +299,6 @@ static enum impulse_whose take_loosely(struct whose *whose, const struct whose_s
     return decision;
 }
 
-/* Out of step by a half or a third: blows between were hidden by ours, and the rhythm is so much faster. */
-static bool subdivide(struct whose_train *train, int64_t time_ns)
-{
-    double interval = whose_train_interval_s(train), after = time_to_s(time_ns - train->time_ns[0]);
-    for (int parts = 2; parts <= 3; parts++) {
-        double step = interval / parts, n = round(after / step);
-        if (n >= 1 && step >= LEAST_INTERVAL_S && fabs(after - n * step) < OUT_OF_STEP * interval) {
-            train->slow_s = step;
-            return true;
-        }
-    }
-    return false;
-}
-
 /* Said to be silent: what is heard is another's or unknown. */
 static enum impulse_whose take_unsaid(struct whose *whose, const struct whose_said *said,
                                       const struct whose_impulse *impulse)
@@ -322,8 +306,6 @@ static enum impulse_whose take_unsaid(struct whose *whose, const struct whose_sa
     enum whose_phase phase = WHOSE_NO_RHYTHM;
     struct whose_train *best = best_train(whose, impulse, &phase);
     bool others = best && best->owner == OWNER_OTHERS, rhythm = phase == WHOSE_IN_RHYTHM;
-    if (others && phase == WHOSE_OFF_RHYTHM && subdivide(best, impulse->time_ns))
-        return add_to(best, impulse, IMPULSE_UNKNOWN);
     if (others && phase != WHOSE_OFF_RHYTHM)
         return add_to(best, impulse, rhythm ? IMPULSE_OTHERS : IMPULSE_UNKNOWN);
     if (best && !others && (best->owner == OWNER_UNSETTLED || phase != WHOSE_NO_RHYTHM))
@@ -358,8 +340,6 @@ static enum impulse_whose take_as_others(struct whose *whose, struct whose_train
     if (phase == WHOSE_OFF_RHYTHM && maybe_ours) {
         return take_loosely(whose, said, impulse, IMPULSE_OURS);
     }
-    if (phase == WHOSE_OFF_RHYTHM)
-        subdivide(train, impulse->time_ns);
     bool sure = phase == WHOSE_IN_RHYTHM || !maybe_ours;
     return add_to(train, impulse, sure ? IMPULSE_OTHERS : IMPULSE_OURS);
 }
