@@ -306,7 +306,8 @@ static enum impulse_whose take_unsaid(struct whose *whose, const struct whose_sa
     enum whose_phase phase = WHOSE_NO_RHYTHM;
     struct whose_train *best = best_train(whose, impulse, &phase);
     bool others = best && best->owner == OWNER_OTHERS, rhythm = phase == WHOSE_IN_RHYTHM;
-    if (others && phase != WHOSE_OFF_RHYTHM)
+    bool level = !others || !(fabs(impulse->level_db - best->slow_db) > GROWN_DB);
+    if (others && level && phase != WHOSE_OFF_RHYTHM)
         return add_to(best, impulse, rhythm ? IMPULSE_OTHERS : IMPULSE_UNKNOWN);
     if (best && !others && (best->owner == OWNER_UNSETTLED || phase != WHOSE_NO_RHYTHM))
         return add_to(best, impulse, IMPULSE_UNKNOWN);

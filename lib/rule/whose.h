@@ -39,6 +39,7 @@ struct whose_train {
     int64_t time_ns[WHOSE_KEPT]; /* the newest first */
     double level_db[WHOSE_KEPT]; /* NAN where the impulse had none */
     double slow_s;               /* its interval over some twenty impulses; NAN before it is a train */
+    double slow_spread;          /* of it, as a share; NAN likewise */
     double slow_db;              /* its level over some twenty impulses; NAN before the first with one */
     double first_db;             /* its level when it was found; NAN where that does not matter */
     double ours_then_db;         /* and ours at that time */

@@ -26,7 +26,9 @@
 #define ANY_LEVEL_DB 60.0       /* the width of "any level" */
 #define UNKNOWN_INTERVAL_S 10.0
 #define ROOT_TWO_PI 2.50662827463100050
-#define MAD_TO_SIGMA 1.4826 /* of a normal distribution */
+#define MAD_TO_SIGMA 1.4826  /* of a normal distribution */
+#define MEAN_TO_SIGMA 1.2533 /* of absolute deviations, likewise: root of pi / 2 */
+#define IN_RHYTHM 3.5
 
 static int by_value(const void *a, const void *b)
 {
@@ -101,12 +103,16 @@ static void learn_interval(struct whose_train *train)
 {
     if (!(train->slow_s > 0)) {
         train->slow_s = train->n >= 4 ? last_interval_s(train) : NAN;
+        train->slow_spread = MOST_SPREAD / 2;
         return;
     }
     double step = time_to_s(train->time_ns[0] - train->time_ns[1]), n = round(step / train->slow_s);
-    if (n >= 1 && n <= FARTHEST_STEPS && fabs(step / n - train->slow_s) < SLOW_REACH * train->slow_s)
-        train->slow_s += (step / n - train->slow_s) / SLOW;
-    else if (train->n >= WHOSE_KEPT && last_interval_s(train) < FASTER * train->slow_s)
+    double off = step / n - train->slow_s;
+    if (n >= 1 && n <= FARTHEST_STEPS && fabs(off) < SLOW_REACH * train->slow_s) {
+        double sigma = fabs(off) / train->slow_s * sqrt(n) * MEAN_TO_SIGMA;
+        train->slow_spread += (fmin(sigma, 2 * MOST_SPREAD) - train->slow_spread) / SLOW;
+        train->slow_s += off / SLOW;
+    } else if (train->n >= WHOSE_KEPT && last_interval_s(train) < FASTER * train->slow_s)
         train->slow_s = last_interval_s(train); /* what was taken for its rhythm was a part of it */
 }
 
@@ -116,6 +122,8 @@ static double interval_spread(const struct whose_train *train, double interval_s
     uint32_t n = folded_intervals(train, steps);
     if (n < 4)
         return MOST_SPREAD;
+    if (train->owner == OWNER_OTHERS && train->slow_spread > 0)
+        return train->slow_spread < LEAST_SPREAD ? LEAST_SPREAD : train->slow_spread;
     for (uint32_t i = 0; i < n; i++)
         steps[i] = fabs(steps[i] - interval_s);
     double spread = MAD_TO_SIGMA * median(steps, n) / interval_s;
@@ -183,7 +191,7 @@ static double time_likelihood(const struct whose_train *train, int64_t time_ns, 
             continue;
         double sigma = spread * interval * sqrt(steps), away = after - steps * interval;
         double likelihood = (1 - SHARE_OFF) * pow(SHARE_MISSED, steps - 1 - i) * normal(away, sigma);
-        if (fabs(away) < 3 * sigma && likelihood > 0)
+        if (fabs(away) < IN_RHYTHM * sigma && likelihood > 0)
             *out_phase = WHOSE_IN_RHYTHM;
         best = likelihood > best ? likelihood : best;
     }
