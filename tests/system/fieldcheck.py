@@ -131,7 +131,9 @@ def settings_reach_the_ledger(folder):
     check("given ones have the closed form's SEL within 0.05 dB", all(abs(row[2] - sel) < 0.05 for row in wanted),
           (sel, wanted))
     count = ask(given, "SELECT impulses, per_minute FROM impulse_count")
-    check("their count and rate have a view", count == [(8, 30.0)], count)
+    # With no source said to be on, the first blows are nobody's and the rest another's: a row each.
+    check("their count and rate have a view", sum(row[0] for row in count) == 8 and all(row[1] == 30.0 for row in count),
+          count)
     plain = numpy.array([json.loads(row[0]) for row in ask(given, "SELECT bands FROM level")], float)
     corrected = numpy.array([json.loads(row[0]) for row in ask(table, "SELECT bands FROM level")], float)
     difference = numpy.nanmean(corrected - plain, axis=0)
