@@ -10,7 +10,7 @@ import time
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
 from daemon import Daemon  # noqa: E402
-from watch import BUILD, ROOT, ask, check, figure, finish, folder, settings, verify  # noqa: E402
+from watch import BUILD, ROOT, ask, check, figure, finish, folder, settings, skip, verify  # noqa: E402
 
 STALL, UNPLUG = (20.0, 24.0), (34.0, 39.0)
 
@@ -124,7 +124,10 @@ def live(place):
         seen_and_heard_again(daemon, place, "a stall", *STALL)
         stopped_capture(daemon, place)
         seen_and_heard_again(daemon, place, "an unplugged device", *UNPLUG)
-        blocked_watch(daemon, place)
+        if os.path.basename(BUILD) == "tsan":  # its own interceptor takes the wait before the injector sees it
+            skip("a blocked watch thread", "skipped: the injector does not reach under ThreadSanitizer")
+        else:
+            blocked_watch(daemon, place)
         seconds, code = daemon.terminate()
         check("SIGTERM ends it in under 1 s", seconds < 1.0 and code == 0, (seconds, code, daemon.errors()))
     ledger = place + "/watch.ledger"
