@@ -119,7 +119,7 @@ def live(place):
                            " contact = { look_evidence = 90.0; act_evidence = 95.0; };")
     daemon = Daemon(config, sound_device(place))
     with daemon:
-        check("the device is heard", daemon.wait_for(lambda s: s["streams"][0]["hearing"], 5), daemon.errors())
+        check("the device is heard", daemon.wait_for(lambda s: s["streams"][0]["hearing"], 10), daemon.errors())
         bring_to_a_stop(daemon)
         seen_and_heard_again(daemon, place, "a stall", *STALL)
         stopped_capture(daemon, place)
