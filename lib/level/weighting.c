@@ -16,7 +16,7 @@
 #define OTHERS "otariids and other marine carnivores"
 
 /* Guidance, group, animals, a, b, f1 Hz, f2 Hz, C dB, K dB, hearing range Hz, in air, mark. The parameters of
- * the three guidances come from transcriptions that name table and page. */
+ * the three guidances come from copies that name table and page. */
 static const struct weighting rows[] = {
     {N18, "LF", LOW_CETACEANS, 1.0, 2, 200, 19e3, 0.13, 179, 7, 35e3, false, MARK_SECONDARY},
     {N18, "MF", "mid-frequency cetaceans (dolphins, beaked and sperm whales)", 1.6, 2, 8.8e3, 110e3, 1.20,

@@ -59,7 +59,7 @@ struct mammal_row {
     double tts_continuous, injury_continuous, tts_impulsive, injury_impulsive, tts_peak, injury_peak;
 };
 
-/* NMFS 2018 (version 2.0), Southall et al. 2019, NMFS 2024 (version 3.0): their tables, from transcriptions;
+/* NMFS 2018 (version 2.0), Southall et al. 2019, NMFS 2024 (version 3.0): their tables, from copies;
  * OCW also as in Federal Register 2025-00450, table 1. The impulsive TTS cells of 2018 are from memory. */
 static const struct mammal_row rows[] = {
     {"nmfs-2018", "LF", GUIDANCE_NMFS_2018, 179, 199, 168, 183, 213, 219},
