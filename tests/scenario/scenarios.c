@@ -14,7 +14,7 @@
 struct scenario {
     char path[512], title[256];
     const struct permit *permit;
-    bool transcript;
+    bool writes_all;
 };
 
 static struct scenario scenarios[MAX_SCENARIOS];
@@ -42,7 +42,7 @@ static void play(void **state)
     static char problem[4096];
     if (!scenario->permit)
         fail_msg("%s: no title, or a permit that cannot be loaded", scenario->path);
-    if (!scenario_play(scenario->path, scenario->permit, scenario->transcript, &n_outcomes, problem,
+    if (!scenario_play(scenario->path, scenario->permit, scenario->writes_all, &n_outcomes, problem,
                        sizeof problem)) {
         print_message("# %s\n", problem);
         fail();
@@ -96,12 +96,12 @@ static void the_player_is_strict(void **state)
     }
 }
 
-static void add(const char *name, bool transcript)
+static void add(const char *name, bool writes_all)
 {
     struct scenario *scenario = &scenarios[n_scenarios++];
     char permit[PERMIT_NAME_SIZE];
     snprintf(scenario->path, sizeof scenario->path, FOLDER "/%.200s", name);
-    scenario->transcript = transcript;
+    scenario->writes_all = writes_all;
     if (scenario_head(scenario->path, scenario->title, sizeof scenario->title, permit, sizeof permit))
         scenario->permit = permit_of(permit);
     else

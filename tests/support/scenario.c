@@ -86,7 +86,7 @@ static void take(void *context, const struct outcome *outcome)
         return;
     if (outcome->kind == OUTCOME_CONTACT)
         return;
-    if (player->transcript) {
+    if (player->writes_all) {
         char text[1024];
         player_outcome_text(outcome, text, sizeof text);
         printf("%s\n", text);
@@ -147,9 +147,9 @@ static bool play_line(struct player *player, const char *line)
     bool restart = player_after(rest, "the program starts again") != NULL;
     if (!restart && at_ns > player->now_ns)
         player_pass_to(player, at_ns);
-    if (player->transcript && !expected)
+    if (player->writes_all && !expected)
         printf("%s\n", line);
-    if (expected && player->transcript)
+    if (expected && player->writes_all)
         return false;
     if (expected) {
         player_expect(player, at_ns, expected);
@@ -164,9 +164,9 @@ static bool play_line(struct player *player, const char *line)
         player_check(player, rest + 6);
     else
         player_event(player, rest);
-    if (player->transcript && player->failed)
+    if (player->writes_all && player->failed)
         printf("# %s\n", player->problem);
-    player->failed = player->failed && !player->transcript;
+    player->failed = player->failed && !player->writes_all;
     return player->failed;
 }
 
@@ -202,7 +202,7 @@ bool scenario_head(const char *path, char *title, size_t title_size, char *permi
     return *title && *permit;
 }
 
-bool scenario_play(const char *path, const struct permit *permit, bool transcript, unsigned *out_outcomes,
+bool scenario_play(const char *path, const struct permit *permit, bool writes_all, unsigned *out_outcomes,
                    char *problem, size_t problem_size)
 {
     struct player *player = calloc(1, sizeof *player);
@@ -212,7 +212,7 @@ bool scenario_play(const char *path, const struct permit *permit, bool transcrip
     if (!player || !file)
         abort();
     player->path = path;
-    player->transcript = transcript;
+    player->writes_all = writes_all;
     player->problem = problem;
     player->problem_size = problem_size;
     player->run = 1;

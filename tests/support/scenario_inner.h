@@ -13,7 +13,7 @@
 struct player {
     const char *path;
     unsigned line;
-    bool transcript, failed;
+    bool writes_all, failed;
     char *problem;
     size_t problem_size;
     struct watch_setup setup;
