@@ -69,6 +69,23 @@ def pieces(place, scene_path):
         file.write(SCENE[SCENE.index("notes = "):])
     scan(config, place + "/wav.ledger", "--notes", place + "/notes.cfg", *START, wav)
     first = entries(place + "/wav.ledger")
+    # The recording at real pace, while the pieces below and two busy loops load the machine.
+    load = [subprocess.Popen(["sh", "-c", "while :; do :; done"]) for _ in range(2)]
+    real = subprocess.Popen([BUILD + "/hushwatch", "scan", "--config", config, "--ledger", place + "/wav-real.ledger",
+                             "--notes", place + "/notes.cfg", "--pace", "real", *START, wav],
+                            stdout=subprocess.DEVNULL, stderr=subprocess.PIPE, text=True)
+    try:
+        in_pieces(place, wav, first)
+        problem = real.communicate(timeout=SECONDS * 3 + 60)[1]
+    finally:
+        for process in load + [real]:
+            process.kill()
+            process.wait()
+    check("the recording is scanned at real pace under load", real.returncode == 0, problem)
+    compare("the recording at real pace gives the same entries", first, entries(place + "/wav-real.ledger"))
+
+
+def in_pieces(place, wav, first):
     import wave
     try:
         with wave.open(wav) as sound:
