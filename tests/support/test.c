@@ -2,6 +2,7 @@
 #include "support/test.h"
 #include <math.h>
 #include <stdlib.h>
+#include <sys/wait.h>
 #include <unistd.h>
 
 void test_assert_near(double a, double b, double tolerance, const char *what, const char *file, int line)
@@ -26,6 +27,18 @@ const char *test_shared(const char *name)
     const char *folder = getenv("HUSHWATCH_SHARED");
     snprintf(path, sizeof path, "%s/%s", folder ? folder : "../shared", name);
     return access(path, R_OK) == 0 ? path : NULL;
+}
+
+int test_shell(const char *format, ...)
+{
+    char command[4096];
+    va_list arguments;
+    va_start(arguments, format);
+    vsnprintf(command, sizeof command, format, arguments);
+    va_end(arguments);
+    int result = system(command);
+    assert_true(WIFEXITED(result));
+    return WEXITSTATUS(result);
 }
 
 const char *test_build(void)

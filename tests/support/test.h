@@ -22,6 +22,9 @@ enum test_length test_length(void);
 
 /* A file of the shared folder (not part of the project), or NULL where it is absent. The text is static. */
 const char *test_shared(const char *name);
+/* Runs a shell command; its exit code. The test fails when it was ended by a signal. */
+int test_shell(const char *format, ...) __attribute__((format(printf, 1, 2)));
+
 /* The build folder that the runner names. */
 const char *test_build(void);
 

@@ -15,20 +15,6 @@
 
 static char folder[512];
 
-static int shell(const char *format, ...) __attribute__((format(printf, 1, 2)));
-
-static int shell(const char *format, ...)
-{
-    char command[4096];
-    va_list arguments;
-    va_start(arguments, format);
-    vsnprintf(command, sizeof command, format, arguments);
-    va_end(arguments);
-    int result = system(command);
-    assert_true(WIFEXITED(result));
-    return WEXITSTATUS(result);
-}
-
 /* ---- a watch of 20 minutes, told by hand */
 
 #define ZERO_NS (INT64_C(1772366400) * TIME_NS_PER_S) /* 2026-03-01T12:00:00Z */
@@ -255,13 +241,13 @@ static int set_up(void **state)
 static int tear_down(void **state)
 {
     (void)state;
-    return getenv("KEEP") ? 0 : shell("rm -rf '%s'", folder);
+    return getenv("KEEP") ? 0 : test_shell("rm -rf '%s'", folder);
 }
 
 static int report(const char *ledger, const char *page)
 {
-    return shell("'%s/hushwatch' report '%s/%s' --sheet '%s/%s' > '%s/out' 2>&1", test_build(), folder,
-                 ledger, folder, page, folder);
+    return test_shell("'%s/hushwatch' report '%s/%s' --sheet '%s/%s' > '%s/out' 2>&1", test_build(), folder,
+                      ledger, folder, page, folder);
 }
 
 /* The text of a table's row that begins with the given cells, cells parted by '|', as Python's XML parser
@@ -277,8 +263,8 @@ static const char read_rows[] = "import sys, xml.etree.ElementTree as e\n"
 
 static void assert_page_says(const char *line)
 {
-    if (shell("grep -qF -- '%s' '%s/rows'", line, folder) != 0) {
-        shell("cat '%s/rows' >&2", folder);
+    if (test_shell("grep -qF -- '%s' '%s/rows'", line, folder) != 0) {
+        test_shell("cat '%s/rows' >&2", folder);
         fail_msg("the page does not say: %s", line);
     }
 }
@@ -287,14 +273,15 @@ static void the_figures_are_right(void **state)
 {
     (void)state;
     assert_int_equal(report("watch.ledger", "sheet.html"), 0);
-    assert_int_equal(shell("grep -q 'sheet.html: written' '%s/out'", folder), 0);
+    assert_int_equal(test_shell("grep -q 'sheet.html: written' '%s/out'", folder), 0);
     char path[600];
     snprintf(path, sizeof path, "%s/read.py", folder);
     FILE *script = fopen(path, "w");
     assert_non_null(script);
     fputs(read_rows, script);
     fclose(script);
-    assert_int_equal(shell("/usr/bin/python3 '%s' '%s/sheet.html' > '%s/rows'", path, folder, folder), 0);
+    assert_int_equal(test_shell("/usr/bin/python3 '%s' '%s/sheet.html' > '%s/rows'", path, folder, folder),
+                     0);
     assert_page_says("north yard, 2026-03-01 12:00:00 to 2026-03-01 12:20:00 UTC");
     assert_page_says("1|watch|2026-03-01 12:00:00|2026-03-01 12:20:00|0:20:00||clock|");
     /* Ada from 5 s to 905 s; Bo from 10 s to the end, 1200 s */
@@ -316,25 +303,26 @@ static void the_figures_are_right(void **state)
     assert_page_says("demonstration|Demonstration permit: never for work|none|2026|NO: a demonstration|");
     assert_page_says("pre_watch.minutes|1.0|invented|for the test");
     assert_page_says("break.minutes|10|memory, high|from memory");
-    assert_int_equal(shell("grep -q 'zones\\[0\\]' '%s/rows'", folder), 1); /* read: not in the list */
+    assert_int_equal(test_shell("grep -q 'zones\\[0\\]' '%s/rows'", folder), 1); /* read: not in the list */
     assert_page_says("The ledger is good:");
     assert_page_says("Acoustic silence does not prove absence");
     assert_page_says("A qualified observer decides");
     assert_page_says("the competent authority come first");
     /* nothing is fetched from elsewhere */
-    assert_int_equal(shell("grep -Eq 'https?:|src=|@import|<script' '%s/sheet.html'", folder), 1);
+    assert_int_equal(test_shell("grep -Eq 'https?:|src=|@import|<script' '%s/sheet.html'", folder), 1);
 }
 
 static void a_tampered_ledger_is_said(void **state)
 {
     (void)state;
     assert_int_equal(
-        shell("cp '%s/watch.ledger' '%s/bad.ledger' && sqlite3 '%s/bad.ledger' \"UPDATE entry SET body = "
-              "replace(body, '171.50', '151.50') WHERE kind = 'impulse'\"",
-              folder, folder, folder),
+        test_shell(
+            "cp '%s/watch.ledger' '%s/bad.ledger' && sqlite3 '%s/bad.ledger' \"UPDATE entry SET body = "
+            "replace(body, '171.50', '151.50') WHERE kind = 'impulse'\"",
+            folder, folder, folder),
         0);
     assert_int_equal(report("bad.ledger", "bad.html"), 1);
-    assert_int_equal(shell("grep -q 'NOT AS IT WAS WRITTEN (1 faults)' '%s/bad.html'", folder), 0);
+    assert_int_equal(test_shell("grep -q 'NOT AS IT WAS WRITTEN (1 faults)' '%s/bad.html'", folder), 0);
 }
 
 static void wrong_use_is_refused(void **state)
@@ -342,12 +330,13 @@ static void wrong_use_is_refused(void **state)
     (void)state;
     assert_int_equal(report("none.ledger", "x.html"), 2);
     assert_int_equal(report("watch.ledger", "watch.ledger"), 2);
-    assert_int_equal(shell("grep -q 'is the ledger itself' '%s/out'", folder), 0);
+    assert_int_equal(test_shell("grep -q 'is the ledger itself' '%s/out'", folder), 0);
     assert_int_equal(
-        shell("'%s/hushwatch' verify '%s/watch.ledger' > '%s/out'", test_build(), folder, folder), 0);
+        test_shell("'%s/hushwatch' verify '%s/watch.ledger' > '%s/out'", test_build(), folder, folder), 0);
     assert_int_equal(report("watch.ledger", "no-folder/x.html"), 3);
     assert_int_equal(
-        shell("'%s/hushwatch' report '%s/watch.ledger' > '%s/out' 2>&1", test_build(), folder, folder), 2);
+        test_shell("'%s/hushwatch' report '%s/watch.ledger' > '%s/out' 2>&1", test_build(), folder, folder),
+        2);
 }
 
 int main(void)

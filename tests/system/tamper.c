@@ -15,21 +15,6 @@
 
 static char folder[512];
 
-static int shell(const char *format, ...) __attribute__((format(printf, 1, 2)));
-
-/* Exit code of a shell command. */
-static int shell(const char *format, ...)
-{
-    char command[4096];
-    va_list arguments;
-    va_start(arguments, format);
-    vsnprintf(command, sizeof command, format, arguments);
-    va_end(arguments);
-    int result = system(command);
-    assert_true(WIFEXITED(result));
-    return WEXITSTATUS(result);
-}
-
 #define ZERO_NS (INT64_C(1772366400) * TIME_NS_PER_S) /* 2026-03-01T12:00:00Z */
 
 static void add_line(struct ledger *ledger, int64_t watch_ns, const char *kind, const char *body)
@@ -94,7 +79,7 @@ static int set_up(void **state)
         return -1;
     make_ledger();
     /* The document's own commands: the block marked sh. */
-    return shell(
+    return test_shell(
         "sed -n '/^```sh$/,/^```$/p' docs/ledger.md | sed '/^```/d' > '%s/check.sh' && test -s '%s/check.sh'",
         folder, folder);
 }
@@ -102,31 +87,31 @@ static int set_up(void **state)
 static int tear_down(void **state)
 {
     (void)state;
-    return shell("rm -rf '%s'", folder);
+    return test_shell("rm -rf '%s'", folder);
 }
 
 static int verify(const char *name)
 {
-    return shell("'%s/hushwatch' verify '%s/%s.ledger' > '%s/verify.out' 2>&1", test_build(), folder, name,
-                 folder);
+    return test_shell("'%s/hushwatch' verify '%s/%s.ledger' > '%s/verify.out' 2>&1", test_build(), folder,
+                      name, folder);
 }
 
 static int procedure(const char *name)
 {
-    return shell("LEDGER='%s/%s.ledger' sh '%s/check.sh' > '%s/procedure.out' 2>&1", folder, name, folder,
-                 folder);
+    return test_shell("LEDGER='%s/%s.ledger' sh '%s/check.sh' > '%s/procedure.out' 2>&1", folder, name,
+                      folder, folder);
 }
 
 static bool says(const char *output, const char *words)
 {
-    return shell("grep -q -- '%s' '%s/%s.out'", words, folder, output) == 0;
+    return test_shell("grep -q -- '%s' '%s/%s.out'", words, folder, output) == 0;
 }
 
 /* Copies the good ledger and changes the copy by SQL, as anybody with sqlite3 can. */
 static void tamper(const char *name, const char *sql)
 {
-    assert_int_equal(shell("cp '%s/good.ledger' '%s/%s.ledger'", folder, folder, name), 0);
-    assert_int_equal(shell("sqlite3 '%s/%s.ledger' \"%s\"", folder, name, sql), 0);
+    assert_int_equal(test_shell("cp '%s/good.ledger' '%s/%s.ledger'", folder, folder, name), 0);
+    assert_int_equal(test_shell("sqlite3 '%s/%s.ledger' \"%s\"", folder, name, sql), 0);
 }
 
 static void assert_found_by_both(const char *name, const char *sql, const char *verify_says)
@@ -148,8 +133,9 @@ static void a_good_ledger_is_good(void **state)
     assert_true(says("procedure", "^good$"));
     /* Both print the same last hash, which is to be noted elsewhere. */
     assert_int_equal(
-        shell("h=$(sed -n 's/.*last hash //p' '%s/verify.out'); grep -q \"last hash: $h\" '%s/procedure.out'",
-              folder, folder),
+        test_shell(
+            "h=$(sed -n 's/.*last hash //p' '%s/verify.out'); grep -q \"last hash: $h\" '%s/procedure.out'",
+            folder, folder),
         0);
 }
 
@@ -213,14 +199,15 @@ static void a_hash_made_anew_moves_the_fault_on(void **state)
 {
     (void)state;
     tamper("anew", "UPDATE entry SET body = replace(body, '170.25', '150.25') WHERE seq = 6");
-    assert_int_equal(shell("cd '%s' && h=$(sqlite3 anew.ledger \"SELECT writefile('anew.txt', (SELECT hash "
-                           "FROM entry WHERE seq = 5) || "
-                           "char(10) || seq || char(10) || utc || char(10) || kind || char(10) || body) FROM "
-                           "entry WHERE seq = 6\" "
-                           "> anew.n; sha256sum < anew.txt | cut -c1-64) && sqlite3 anew.ledger \"UPDATE "
-                           "entry SET hash = '$h' WHERE seq = 6\"",
-                           folder),
-                     0);
+    assert_int_equal(
+        test_shell("cd '%s' && h=$(sqlite3 anew.ledger \"SELECT writefile('anew.txt', (SELECT hash "
+                   "FROM entry WHERE seq = 5) || "
+                   "char(10) || seq || char(10) || utc || char(10) || kind || char(10) || body) FROM "
+                   "entry WHERE seq = 6\" "
+                   "> anew.n; sha256sum < anew.txt | cut -c1-64) && sqlite3 anew.ledger \"UPDATE "
+                   "entry SET hash = '$h' WHERE seq = 6\"",
+                   folder),
+        0);
     assert_int_equal(verify("anew"), 1);
     assert_true(says("verify", "entry 7: its hash"));
     assert_false(says("verify", "entry 6: "));
@@ -286,10 +273,10 @@ static void wrong_use_has_its_own_exit_code(void **state)
 {
     (void)state;
     assert_int_equal(verify("no-such"), 2);
-    assert_int_equal(shell("'%s/hushwatch' verify > '%s/x.out' 2>&1", test_build(), folder), 2);
-    assert_int_equal(shell("'%s/hushwatch' verify --help > '%s/x.out' 2>&1", test_build(), folder), 0);
-    assert_int_equal(shell("'%s/hushwatch' vrify > '%s/x.out' 2>&1", test_build(), folder), 2);
-    assert_int_equal(shell("seq 1 999 > '%s/text.ledger'", folder), 0);
+    assert_int_equal(test_shell("'%s/hushwatch' verify > '%s/x.out' 2>&1", test_build(), folder), 2);
+    assert_int_equal(test_shell("'%s/hushwatch' verify --help > '%s/x.out' 2>&1", test_build(), folder), 0);
+    assert_int_equal(test_shell("'%s/hushwatch' vrify > '%s/x.out' 2>&1", test_build(), folder), 2);
+    assert_int_equal(test_shell("seq 1 999 > '%s/text.ledger'", folder), 0);
     assert_int_equal(verify("text"), 1);
     assert_true(says("verify", "not a ledger"));
     tamper("newer", "PRAGMA user_version=2");
