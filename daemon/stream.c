@@ -44,7 +44,7 @@ struct stream {
     pthread_mutex_t lock; /* guards what follows */
     struct stream_state state;
     uint32_t n_accounts;
-    struct class_account accounts[CATALOGUE_MAX_CLASSES];
+    struct class_account accounts[LISTEN_MAX_ACCOUNTS];
 };
 
 enum status stream_open(const struct stream_setup *setup, struct problems *problems, struct stream **out)
@@ -325,7 +325,7 @@ void stream_get_state(struct stream *stream, struct stream_state *out)
     pthread_mutex_unlock(&stream->lock);
 }
 
-uint32_t stream_get_accounts(struct stream *stream, struct class_account out[CATALOGUE_MAX_CLASSES])
+uint32_t stream_get_accounts(struct stream *stream, struct class_account out[LISTEN_MAX_ACCOUNTS])
 {
     pthread_mutex_lock(&stream->lock);
     uint32_t n = stream->n_accounts;

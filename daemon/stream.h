@@ -65,8 +65,8 @@ struct stream_state {
 /* From any thread. */
 void stream_get_state(struct stream *stream, struct stream_state *out);
 
-/* What became of the sounds that each class looked at, about a second old, and exact once the stream has
- * ended; returns how many classes (0 before the first second). From any thread. */
-uint32_t stream_get_accounts(struct stream *stream, struct class_account out[CATALOGUE_MAX_CLASSES]);
+/* What became of the sounds that each class and the finder of impulses looked at, about a second old, and
+ * exact once the stream has ended; returns how many (0 before the first second). From any thread. */
+uint32_t stream_get_accounts(struct stream *stream, struct class_account out[LISTEN_MAX_ACCOUNTS]);
 
 #endif

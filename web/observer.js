@@ -119,7 +119,7 @@ function drawHearing(state) {
     setText(node, !gap ? "None." : `${utc(gap.start_s)} UTC, ${(gap.end_s - gap.start_s).toFixed(1)} s: ${gap.cause}, ${gap.channel ? "channel " + gap.stream + "." + gap.channel : "all of stream " + gap.stream}`));
 }
 
-/** Why sounds were not calls: of each class what was found, what was rejected, or that the rate cannot carry it. */
+/** Why sounds were not calls or impulses: of each class what was found, what was rejected, or that the rate cannot carry it. */
 function drawExplanation(state) {
   if (!$("explain").open) return;
   const rows = state.streams.flatMap((stream) => (stream.classes || []).map((account) => ({ stream, account })));

@@ -51,8 +51,8 @@ struct hearing_stream {
     double block_age_s;           /* since the last block arrived; NAN where none has */
     double unheard_s;             /* unheard time of this run so far */
     double masked_s;              /* time of this run in which the own source covered some band */
-    uint32_t n_accounts;          /* one a class of the catalogue */
-    struct class_account accounts[CATALOGUE_MAX_CLASSES];
+    uint32_t n_accounts;          /* listen_get_accounts */
+    struct class_account accounts[LISTEN_MAX_ACCOUNTS];
 };
 
 struct hearing_level {

@@ -167,10 +167,10 @@ static void explain_class(const struct class_account *account)
     printf("%s\n", *between ? "" : "nothing came near");
 }
 
-/* Why sounds were not calls. After the streams have ended. */
+/* Why sounds were not calls or impulses. After the streams have ended. */
 static void explain(struct chain *chain)
 {
-    struct class_account accounts[CATALOGUE_MAX_CLASSES];
+    struct class_account accounts[LISTEN_MAX_ACCOUNTS];
     for (uint32_t i = 1; i <= chain_count_streams(chain); i++) {
         struct stream *stream = chain_get_stream(chain, i);
         uint32_t n = stream_get_accounts(stream, accounts);

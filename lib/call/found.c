@@ -16,6 +16,10 @@ const char *rejection_text(enum rejection rejection)
         [REJECT_OWN_SOURCE] = "own source",
         [REJECT_TOO_MANY] = "too many at once",
         [REJECT_PART_OF_ANOTHER] = "part of another call",
+        [REJECT_ECHO] = "echo",
+        [REJECT_TOO_HIGH] = "too high",
+        [REJECT_NOT_SUDDEN] = "not sudden",
+        [REJECT_LIKE_A_CALL] = "like a call",
     };
     return (unsigned)rejection < REJECT_COUNT ? names[rejection] : "unknown";
 }

@@ -35,6 +35,10 @@ enum rejection {
     REJECT_OWN_SOURCE,
     REJECT_TOO_MANY,
     REJECT_PART_OF_ANOTHER, /* a harmonic or a piece of a call that was found already */
+    REJECT_ECHO,            /* this and the rest: of impulses, level/impulses.h */
+    REJECT_TOO_HIGH,
+    REJECT_NOT_SUDDEN,
+    REJECT_LIKE_A_CALL,
     REJECT_COUNT
 };
 

@@ -26,6 +26,7 @@ struct listen {
     uint32_t gate_channel;                    /* whose impulses mask what the stream hears; 0: none */
     uint64_t n_hidden[CATALOGUE_MAX_CLASSES]; /* calls that the own source covered */
     uint64_t n_found[CATALOGUE_MAX_CLASSES];
+    uint64_t n_impulses;
     struct joiner joiner;
     uint64_t counters[EVENT_NOTE + 1];
     const struct event_sink *sink; /* of the push in progress */
@@ -141,6 +142,7 @@ static void take_impulse(void *context, uint32_t channel, const struct found_imp
     struct listen *listen = context;
     if (channel != listen->impulse_channel)
         return;
+    listen->n_impulses++;
     struct event *event = add_event(listen, EVENT_IMPULSE, found->known_frame);
     const struct ear *ear = &listen->ears[channel - 1];
     struct impulse *impulse = &event->as.impulse;
@@ -415,7 +417,21 @@ static bool can_hear(const struct listen *listen, uint32_t class_index)
     return false;
 }
 
-uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[CATALOGUE_MAX_CLASSES])
+static void account_for_impulses(const struct listen *listen, struct class_account *out)
+{
+    struct impulse_rejections why;
+    impulse_finder_get_rejections(listen->ears[listen->impulse_channel - 1].impulses, &why);
+    *out = (struct class_account){.name = "impulse",
+                                  .hearable = true,
+                                  .n_found = listen->n_impulses,
+                                  .rejected = {[REJECT_TOO_WEAK] = why.too_weak,
+                                               [REJECT_ECHO] = why.echo,
+                                               [REJECT_TOO_HIGH] = why.high,
+                                               [REJECT_NOT_SUDDEN] = why.slow,
+                                               [REJECT_LIKE_A_CALL] = why.call}};
+}
+
+uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[LISTEN_MAX_ACCOUNTS])
 {
     const struct catalogue *catalogue = listen->setup.catalogue;
     uint64_t rejections[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
@@ -426,5 +442,8 @@ uint32_t listen_get_accounts(const struct listen *listen, struct class_account o
         out[c].n_found = listen->n_found[c];
         memcpy(out[c].rejected, rejections[c], sizeof out[c].rejected);
     }
-    return catalogue->n_classes;
+    if (listen->impulse_channel == 0)
+        return catalogue->n_classes;
+    account_for_impulses(listen, &out[catalogue->n_classes]);
+    return catalogue->n_classes + 1;
 }

@@ -77,7 +77,11 @@ struct class_account {
     uint64_t rejected[REJECT_COUNT];
 };
 
-/* Writes one a class of the catalogue, in its order; returns how many. */
-uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[CATALOGUE_MAX_CLASSES]);
+/* Of each class of the catalogue, and of the source's impulses where a channel measures them. */
+#define LISTEN_MAX_ACCOUNTS (CATALOGUE_MAX_CLASSES + 1)
+
+/* Writes one a class of the catalogue, in its order, then that of the impulses, named "impulse"; returns how
+ * many. */
+uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[LISTEN_MAX_ACCOUNTS]);
 
 #endif

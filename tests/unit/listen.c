@@ -39,7 +39,8 @@ struct heard {
     uint32_t n;
     struct event *events;
     uint32_t n_columns;
-    struct class_account account; /* of the one class */
+    struct class_account account;  /* of the one class */
+    struct class_account impulses; /* of the impulses */
 };
 
 struct playing {
@@ -110,9 +111,10 @@ static struct heard play(const float *frames, uint64_t n, uint32_t channels, boo
     blocks_finish(blocks, &sink);
     const struct event_sink events = {take_event, &playing};
     assert_int_equal(listen_finish(playing.listen, &events), STATUS_OK);
-    struct class_account accounts[CATALOGUE_MAX_CLASSES];
-    assert_int_equal(listen_get_accounts(playing.listen, accounts), 1);
+    struct class_account accounts[LISTEN_MAX_ACCOUNTS];
+    assert_int_equal(listen_get_accounts(playing.listen, accounts), 2);
     heard.account = accounts[0];
+    heard.impulses = accounts[1];
     blocks_destroy(blocks);
     listen_destroy(playing.listen);
     return heard;
@@ -205,6 +207,8 @@ static void one_call_on_three_channels_is_one_event(void **state)
     assert_string_equal(heard.account.name, "whistle");
     assert_true(heard.account.hearable);
     assert_int_equal(heard.account.n_found, calls);
+    assert_string_equal(heard.impulses.name, "impulse");
+    assert_int_equal(heard.impulses.n_found, count(&heard, EVENT_IMPULSE));
     for (uint32_t i = 0; i < heard.n; i++)
         if (heard.events[i].kind == EVENT_CALL) {
             double late_s = (double)(heard.events[i].known_ns - heard.events[i].as.call.end_ns) * 1e-9;
