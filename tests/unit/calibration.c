@@ -3,6 +3,7 @@
 #include "support/test.h"
 
 #include "base/random.h"
+#include "base/units.h"
 #include "level/calibration.h"
 #include "level/field_check.h"
 #include <math.h>
@@ -25,6 +26,23 @@ static void chains_have_their_full_scale(void **state)
         assert_near(calibration_pa_per_unit(&chain) / row[4] / 0x1p23, 1, 1e-5);
         assert_near(calibration_pa_per_unit(&chain) / row[5] / 0x1p15, 1, 1e-5);
     }
+}
+
+/* "-180 dB re 1 V/uPa" is 1e-9 V for 1 uPa, 1000 uV for 1 Pa (IEC 60565 conventions); 1 V full scale. A sine
+ * that fills the chain has an SPL 3.0103 dB below its peak. */
+static void a_sensitivity_is_volts_a_pascal(void **state)
+{
+    (void)state;
+    static const double rows[][2] = {{-165, 5623.4133}, {-170, 3162.2777}, {-180, 1000}, {-193, 223.8721},
+                                     {-200, 100},       {-211, 28.1838},   {-220, 10}};
+    for (int i = 0; i < 7; i++) {
+        struct calibration channel = {.known = true, .sensitivity_db = rows[i][0], .full_scale_v = 1};
+        assert_near(1e6 / calibration_pa_per_unit(&channel) / rows[i][1], 1, 2e-6);
+    }
+    struct calibration chain = {.known = true, .sensitivity_db = -200, .gain_db = 20, .full_scale_v = 5};
+    double peak_pa = calibration_pa_per_unit(&chain);
+    assert_near(units_spl_db(peak_pa * peak_pa / 2), 190.969, 5.1e-4);
+    assert_near(units_peak_db(peak_pa), 193.979, 5.1e-4);
 }
 
 /* Linear in lg f: half way between 100 Hz and 1 kHz is 316.23 Hz. */
@@ -111,6 +129,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(chains_have_their_full_scale),
+        cmocka_unit_test(a_sensitivity_is_volts_a_pascal),
         cmocka_unit_test(sensitivity_varies_with_frequency),
         cmocka_unit_test(room_over_the_peak_is_six_decibels),
         cmocka_unit_test(a_tone_is_steady_and_clear),

@@ -97,9 +97,25 @@ static void measures_are_the_closed_forms(void **state)
         if (wave ==
             EXPONENTIAL) /* t5 = -tau / 2 ln 0.95 = 0.2565 ms after the onset; sample i is at i + 1/2 */
             assert_near((m.t5_frame + 0.5) / RATE - 0.1, 0.2565e-3, 1e-6);
+        if (wave == EXPONENTIAL) /* and t95 = -tau / 2 ln 0.05 = 14.9787 ms */
+            assert_near((m.t95_frame + 0.5) / RATE - 0.1, 14.9787e-3, 1e-6);
         if (wave == RECTANGLE)
             assert_near(m.peak_to_peak_db, 180, 1e-6);
+        /* 10 lg(E / T90) has all of the energy: -10 lg 0.9 = 0.4576 dB more. */
+        assert_near(m.sel_db - 10 * log10(m.t90_s) - m.rms90_db, 0.4576, 5e-5);
     }
+    /* A sine of 1 Pa for 1 s: SEL = SPL = 116.9897, peak 120, peak to peak 126.0206 dB; T90 of a steady sound
+     * is 0.9 of it. */
+    for (int i = 0; i < N; i++)
+        x[i] = (float)sin(2 * M_PI * 1000 * i / RATE);
+    struct impulse_window sine = {x, N, RATE, 0, 0, INFINITY};
+    struct impulse_measures of_sine;
+    assert_int_equal(impulse_measure(&sine, &of_sine), STATUS_OK);
+    assert_near(of_sine.sel_db, 116.9897, 5e-4);
+    assert_near(of_sine.rms90_db, 116.9897, 5e-3);
+    assert_near(of_sine.peak_db, 120, 5e-4);
+    assert_near(of_sine.peak_to_peak_db, 126.0206, 5e-4);
+    assert_near(of_sine.t90_s, 0.9, 5e-4);
     memset(x, 0, sizeof x);
     struct impulse_window window = {x, N, RATE, 0, 1, INFINITY};
     struct impulse_measures m;

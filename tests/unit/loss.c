@@ -23,10 +23,12 @@ static void spreading_follows_its_law(void **state)
         {1, 0, 0, 0, 0},
         {10, 20, 15, 10, 20},
         {50, 33.9794, 25.4846, 16.9897, 33.9794},
+        {100, 40, 30, 20, 40},
         {500, 53.9794, 40.4846, 26.9897, 53.9794},
         {750, 57.5012, 43.1259, 28.7506, 55.7403},
         {1000, 60, 45, 30, 56.9897},
         {5000, 73.9794, 55.4846, 36.9897, 63.9794},
+        {10000, 80, 60, 40, 66.9897},
         {30000, 89.5424, 67.1568, 44.7712, 71.7609},
     };
     struct loss twenty = power(20, 0), fifteen = power(15, 0), ten = power(10, 0);
@@ -46,9 +48,9 @@ static void isopleths_have_their_closed_form(void **state)
     (void)state;
     static const double want[][5] = {
         /* level, at, threshold, N, range */
-        {180, 10, 160, 15, 215.4435}, {180, 10, 160, 20, 100},        {165, 10, 120, 15, 10000},
-        {190, 10, 160, 15, 1000},     {170, 750, 160, 15, 3481.1916}, {163, 750, 160, 15, 1188.6699},
-        {200, 10, 183, 15, 135.9356},
+        {180, 10, 160, 15, 215.4435}, {180, 10, 160, 20, 100},         {165, 10, 120, 15, 10000},
+        {190, 10, 160, 15, 1000},     {170, 750, 160, 15, 3481.1916},  {163, 750, 160, 15, 1188.6699},
+        {200, 10, 183, 15, 135.9356}, {180, 750, 160, 15, 16158.2602}, {165, 750, 160, 15, 1615.8260},
     };
     for (size_t i = 0; i < sizeof want / sizeof want[0]; i++) {
         struct loss law = power(want[i][3], 0);
@@ -152,6 +154,12 @@ static void energy_flux_has_its_limits(void **state)
     }
     assert_near(loss_db(&law, 1e4), want[4][2], 1e-3);
     assert_near(loss_db(&law, 10), 20, 1e-9); /* spherical near the source */
+    /* Where the limits meet: H / (2 theta_c), where spherical spreading ends, and pi H / (4 eta theta_c^2).
+     */
+    assert_near(loss_db(&hard, 30.694) - 20 * log10(30.694), 0, 1e-3);
+    assert_near(loss_db(&hard, 30.6) - 20 * log10(30.6), 0, 1e-9);
+    assert_true(loss_db(&hard, 30.8) < 20 * log10(30.8));
+    assert_near(loss_db(&hard, 328.866), 15 * log10(328.866) + 5 * log10(0.3 * 30 / M_PI), 1e-4);
     double last = loss_db(&law, 1);
     for (double r = 1; r < 1e5; r *= 1.01) {
         assert_true(loss_db(&law, r) >= last);

@@ -210,6 +210,89 @@ static void noise_bands_keep_their_spread(void **state)
            worst_mean, 100 * worst_spread);
 }
 
+/* Centres 1000 x 10^(n/10) Hz and edges a twentieth of a decade away (IEC 61260-1:2014, 5.2 to 5.5, base ten,
+ * b = 3), worked out apart to eight digits; and the last band whose upper edge is below 0.94 of the Nyquist
+ * frequency: 20 kHz at 48 kHz, 40 kHz at 96 kHz. */
+static void bands_have_their_edges(void **state)
+{
+    (void)state;
+    static const struct {
+        int n;
+        double low_hz, high_hz, width_hz;
+    } bands[] = {{-20, 8.912509, 11.220185, 2.307675},
+                 {-13, 44.668359, 56.234133, 11.565773},
+                 {-10, 89.125094, 112.201845, 23.076752},
+                 {-1, 707.945784, 891.250938, 183.305154},
+                 {0, 891.250938, 1122.018454, 230.767516},
+                 {1, 1122.018454, 1412.537545, 290.519090},
+                 {13, 17782.794100, 22387.211386, 4604.417285},
+                 {16, 35481.338923, 44668.359215, 9187.020292},
+                 {22, 141253.754462, 177827.941004, 36574.186542}};
+    for (size_t i = 0; i < sizeof bands / sizeof bands[0]; i++) {
+        assert_near(decidecades_low_hz(bands[i].n) / bands[i].low_hz, 1, 1e-7);
+        assert_near(decidecades_high_hz(bands[i].n) / bands[i].high_hz, 1, 1e-7);
+        double width = decidecades_high_hz(bands[i].n) - decidecades_low_hz(bands[i].n);
+        assert_near(width / bands[i].width_hz, 1, 3e-7);
+    }
+    static const int last[][2] = {{8000, 5},   {44100, 12},  {48000, 13},
+                                  {96000, 16}, {192000, 19}, {384000, 22}};
+    for (int i = 0; i < 6; i++)
+        assert_int_equal(LEVEL_FIRST_BAND + (int)decidecades_count(last[i][0]) - 1, last[i][1]);
+}
+
+/* What a second's level of a band scatters by in Gaussian noise: 10 lg of chi-square with 2 B T degrees of
+ * freedom (its logarithm's mean and variance are digamma and trigamma functions; worked out apart): standard
+ * deviation, mean less the level of the mean energy, 2.5 and 97.5 % points, dB. The tolerance is four
+ * standard errors of each figure over the seconds heard, and for the shares what binomial counts allow;
+ * neighbouring seconds of the lowest bands share a little sound. */
+static void seconds_of_noise_scatter_as_chi_square(void **state)
+{
+    (void)state;
+    static const struct {
+        int n;
+        double sd_db, bias_db, low_db, high_db;
+    } want[] = {{-17, 2.1357, -0.4874, -5.1432, 3.2171},
+                {-12, 1.1589, -0.1511, -2.5661, 1.9750},
+                {-9, 0.8157, -0.0757, -1.7462, 1.4506},
+                {0, 0.2862, -0.0094, -0.5793, 0.5426},
+                {10, 0.0904, -0.0009, -0.1790, 0.1754}};
+    enum { RATE = 48000, BANDS = 5 };
+    const int seconds = test_length() == TEST_SHORT ? 60 : 400;
+    static float x[RATE];
+    double sum[BANDS] = {0}, sum2[BANDS] = {0};
+    int inside[BANDS] = {0}, count = 0;
+    struct random random;
+    random_reset(&random, 22);
+    struct meter *meter;
+    assert_int_equal(meter_create(RATE, false, &meter), STATUS_OK);
+    for (int s = 0; s < seconds; s++) {
+        struct levels levels = {0};
+        for (int i = 0; i < RATE; i++)
+            x[i] = (float)random_normal(&random);
+        measure(meter, x, RATE, 4096, &levels);
+        for (uint32_t i = 0; s > 2 && i < levels.n; i++, count++)
+            for (int b = 0; b < BANDS; b++) {
+                double width = decidecades_high_hz(want[b].n) - decidecades_low_hz(want[b].n);
+                double off = levels.level[i].band_db[want[b].n - LEVEL_FIRST_BAND] - 120 -
+                             10 * log10(width / (RATE / 2));
+                sum[b] += off;
+                sum2[b] += off * off;
+                inside[b] += off > want[b].low_db && off < want[b].high_db;
+            }
+    }
+    meter_destroy(meter);
+    for (int b = 0; b < BANDS; b++) {
+        double mean = sum[b] / count, sd = sqrt(sum2[b] / count - mean * mean);
+        printf(
+            "# figure noise in band n = %d, %d s, seed 22: scatter %.4f dB for %.4f, bias %+.4f for %+.4f, "
+            "%.1f %% within the 95 %% of chi-square\n",
+            want[b].n, count, sd, want[b].sd_db, mean, want[b].bias_db, 100.0 * inside[b] / count);
+        assert_near(mean, want[b].bias_db, 4 * want[b].sd_db / sqrt(count));
+        assert_near(sd / want[b].sd_db, 1, 4 / sqrt(2.0 * count));
+        assert_near(inside[b] / (double)count, 0.95, 4 * sqrt(0.05 * 0.95 / count));
+    }
+}
+
 /* A click anywhere in a second counts alike: its energy in the FFT's bands, summed over the seconds, is the
  * same wherever it lies (closed form: a unit sample has energy 2 B / rate in a band of width B). */
 static void a_click_counts_alike_anywhere(void **state)
@@ -331,10 +414,15 @@ static void short_seconds_and_silence(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(a_sine_has_its_level),          cmocka_unit_test(bands_keep_the_class_1_mask),
-        cmocka_unit_test(noise_bands_keep_their_spread), cmocka_unit_test(a_click_counts_alike_anywhere),
-        cmocka_unit_test(an_offset_is_no_sound),         cmocka_unit_test(chunks_do_not_matter),
+        cmocka_unit_test(a_sine_has_its_level),
+        cmocka_unit_test(bands_keep_the_class_1_mask),
+        cmocka_unit_test(noise_bands_keep_their_spread),
+        cmocka_unit_test(a_click_counts_alike_anywhere),
+        cmocka_unit_test(an_offset_is_no_sound),
+        cmocka_unit_test(chunks_do_not_matter),
         cmocka_unit_test(short_seconds_and_silence),
+        cmocka_unit_test(bands_have_their_edges),
+        cmocka_unit_test(seconds_of_noise_scatter_as_chi_square),
     };
     return cmocka_run_group_tests_name("meter", tests, NULL, NULL);
 }
