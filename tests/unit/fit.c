@@ -137,7 +137,72 @@ static void wrong_points_do_little(void **state)
 }
 
 /* ---- simulated soft starts */
-enum sea { SEA_POWER, SEA_STEEPER, SEA_FLATTER, SEA_ECHO, SEA_COUNT };
+enum sea { SEA_POWER, SEA_STEEPER, SEA_FLATTER, SEA_ECHO, SEA_CHANNEL, SEA_COUNT };
+
+/* Propagation loss in water of depth_m over a floor that reflects `floor`, under a surface that reflects -1:
+ * Jensen, Kuperman, Porter and Schmidt, "Computational Ocean Acoustics", 2.4.4.2 (from memory): images in
+ * fours, kept in step or as energies. */
+static double images_loss(double r, double from_m, double to_m, double depth_m, double hz, double floor,
+                          bool in_step, int n)
+{
+    double re = 0, im = 0, sum = 0, part = 1;
+    for (int m = 0; m < n; m++, part *= -floor) {
+        const double z[4] = {2 * depth_m * m - from_m + to_m, 2 * depth_m * m + from_m + to_m,
+                             2 * depth_m * (m + 1) - from_m - to_m, 2 * depth_m * (m + 1) + from_m - to_m},
+                     gain[4] = {1, -1, floor, -floor};
+        for (int i = 0; i < 4; i++) {
+            double way = hypot(r, z[i]), of = part * gain[i] / way;
+            re += of * cos(2 * M_PI * hz / 1500 * way);
+            im += of * sin(2 * M_PI * hz / 1500 * way);
+            sum += of * of;
+        }
+    }
+    return -10 * log10(in_step ? re * re + im * im : sum);
+}
+
+/* Worked out apart, in step and as energies, with 200 fours; without a floor it is Lloyd's mirror. */
+static void images_have_their_loss(void **state)
+{
+    (void)state;
+    static const double want[][5] = {{100, 250, 0.5, 30.4115, 35.5341},
+                                     {750, 250, 0.5, 53.0053, 52.2987},
+                                     {750, 100, 0.8, 48.2307, 48.1255},
+                                     {2000, 250, 0.8, 64.6981, 56.4621}};
+    for (int i = 0; i < 4; i++) {
+        const double *row = want[i];
+        assert_near(images_loss(row[0], 10, 15, 30, row[1], row[2], true, 200), row[3], 1e-4);
+        assert_near(images_loss(row[0], 10, 15, 30, row[1], row[2], false, 200), row[4], 1e-4);
+    }
+    static const double mirror[][5] = {/* range, depths, frequency */
+                                       {100, 5, 10, 100, 47.7261},   {100, 5, 10, 1000, 35.2184},
+                                       {750, 5, 10, 100, 82.5637},   {750, 10, 15, 250, 65.1280},
+                                       {750, 10, 15, 1000, 54.0636}, {1000, 25, 50, 150, 57.0139},
+                                       {5000, 5, 10, 100, 115.5171}};
+    for (int i = 0; i < 7; i++) {
+        const double *row = mirror[i], two_pi_hz = 2 * M_PI * row[3] / 1500;
+        assert_near(images_loss(row[0], row[1], row[2], 30, row[3], 0, true, 1), row[4], 1e-4);
+        /* far away 20 lg r - 10 lg(4 sin^2(k z_s z_r / r)) */
+        double far = -20 * log10(2 * fabs(sin(two_pi_hz * row[1] * row[2] / row[0])) / row[0]);
+        assert_near(far, row[4], row[0] > 100 ? 0.03 : 0.11);
+    }
+}
+
+/* A pile's middle to a hydrophone in 30 m over a floor that reflects 0.5: energy from 80 to 400 Hz, worked
+ * out at 300 ranges from 300 to 5000 m. */
+static double channel_loss(double r)
+{
+    enum { N = 300 };
+    static double table[N];
+    for (int i = 0; i < N && table[N - 1] <= 0; i++) {
+        double energy = 0, range_m = 300 * pow(5000.0 / 300, i / (N - 1.0));
+        for (int k = 0; k < 33; k++)
+            energy += pow(10, -images_loss(range_m, 13, 20, 30, 80 + 10 * k, 0.5, true, 20) / 10) / 33;
+        table[i] = -10 * log10(energy);
+    }
+    double at = log(r / 300) / log(5000.0 / 300) * (N - 1);
+    int i = (int)at;
+    return table[i] + (at - i) * (table[i + 1] - table[i]);
+}
 
 struct trial {
     double n_db, scatter_db;
@@ -145,9 +210,12 @@ struct trial {
 };
 
 /* Loss in the true sea: N lg r; its slope 5 dB a decade more or less from 750 m on; or with the floor's echo
- * in the same window, half in step with the direct sound (20 m above a floor that reflects 0.6, 200 Hz). */
+ * in the same window, half in step with the direct sound (20 m above a floor that reflects 0.6, 200 Hz); or
+ * a channel that sound goes up and down in. */
 static double true_loss(const struct trial *trial, double r)
 {
+    if (trial->sea == SEA_CHANNEL)
+        return channel_loss(r);
     double loss = trial->n_db * log10(r);
     if (trial->sea == SEA_STEEPER || trial->sea == SEA_FLATTER)
         return loss + (trial->sea == SEA_STEEPER ? 5 : -5) * fmax(0, log10(r / 750));
@@ -224,7 +292,7 @@ static struct tally run_trials(enum geometry geometry, enum sea sea, uint64_t se
     static const char *const geometries[] = {"drifting 375 to 1500 m", "moored 375 to 1500 m",
                                              "drifting 1 to 4 km"};
     static const char *const seas[] = {"N lg r", "steeper by 5 beyond 750 m", "flatter by 5 beyond 750 m",
-                                       "floor's echo"};
+                                       "floor's echo", "channel of 30 m"};
     struct tally tally = {0};
     struct random random;
     random_reset(&random, seed);
@@ -346,6 +414,7 @@ int main(void)
         cmocka_unit_test(forgets_the_oldest),
         cmocka_unit_test(refuses_what_cannot_tell),
         cmocka_unit_test(wrong_points_do_little),
+        cmocka_unit_test(images_have_their_loss),
         cmocka_unit_test(intervals_hold_where_the_law_holds),
         cmocka_unit_test(intervals_hold_where_the_sea_differs),
         cmocka_unit_test(n_is_close_where_levels_are),
