@@ -248,6 +248,20 @@ struct contact_outcome contact_outcome(const struct contact *contact, const stru
                                     .p_inside = round_decimals(p, ROUND_DECIMALS_PROBABILITY)};
 }
 
+/* Words as the observer's page has them: a probability is never 0 or 1. */
+static void describe_inside(const struct contact *contact, const struct permit_zone *zone,
+                            char out[FLOW_TEXT_SIZE])
+{
+    double p =
+        round_decimals(whereabouts_p_inside(&contact->where, zone->radius_m), ROUND_DECIMALS_PROBABILITY);
+    char percent[16] = "under 1";
+    if (p > 0.99)
+        snprintf(percent, sizeof percent, "over 99");
+    else if (p >= 0.01)
+        snprintf(percent, sizeof percent, "%.0f", 100 * p);
+    snprintf(out, FLOW_TEXT_SIZE, " at %.0f m (%s %% likely inside)", contact->where.median_m, percent);
+}
+
 void contact_describe(const struct contact *contact, const struct permit *permit, int64_t now_ns,
                       char out[FLOW_TEXT_SIZE])
 {
@@ -256,8 +270,7 @@ void contact_describe(const struct contact *contact, const struct permit *permit
     const char *how = contact->seen && contact->n_calls ? "heard and seen" : contact->seen ? "seen" : "heard";
     char where[FLOW_TEXT_SIZE] = "", inside[FLOW_TEXT_SIZE] = "";
     if (contact->where.known && zone)
-        snprintf(where, sizeof where, " at %.0f m (P inside %.2f)", contact->where.median_m,
-                 whereabouts_p_inside(&contact->where, zone->radius_m));
+        describe_inside(contact, zone, where);
     else if (contact->where.known)
         snprintf(where, sizeof where, " at %.0f m", contact->where.median_m);
     else

@@ -253,7 +253,9 @@ static void add_end(const struct watch *watch, const struct advice_key *old, str
     struct why ended = watch->let_go; /* its text and causes first */
     for (uint32_t i = 0; i < wanted->why.n_causes; i++)
         why_add_cause(&ended, wanted->why.causes[i]);
-    snprintf(ended.text, sizeof ended.text, "%.150s; %.100s", watch->let_go.text, wanted->why.text);
+    int first = (int)strnlen(watch->let_go.text, 150);
+    snprintf(ended.text, sizeof ended.text, "%.*s; %.*s", first, watch->let_go.text,
+             (int)sizeof ended.text - 3 - first, wanted->why.text);
     memcpy(ended.clause, wanted->why.clause, sizeof ended.clause);
     wanted->why = ended;
 }
