@@ -83,7 +83,8 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
                                                          site->source.depth_m / 2, 8.0),
                                   .level_spread_db = site->source.level_spread_db,
                                   .scatter_db = site->source.scatter_db,
-                                  .zone_edge_m = zone_edge_m(&rules->permit)};
+                                  .zone_edge_m = zone_edge_m(&rules->permit),
+                                  .soft_start_s = 60 * rules->permit.soft_start_min_minutes};
     for (uint32_t i = 0; i < n_streams; i++)
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
             const struct channel_settings *channel = &site->streams[i].channels[c];

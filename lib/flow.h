@@ -176,15 +176,31 @@ struct exposure_outcome {
     char set[NOTE_NAME_SIZE], criterion[NOTE_NAME_SIZE]; /* the criterion's document and name */
     char metric[NOTE_NAME_SIZE], weighting[NOTE_NAME_SIZE], window[NOTE_NAME_SIZE];
     char reference[NOTE_NAME_SIZE];                     /* of its levels: "1 uPa2 s" ... */
-    double value_db;                                    /* the criterion's */
+    char effect[NOTE_NAME_SIZE];                        /* "injury", "limit" ... */
+    double limit_range_m;                               /* where a limit must be kept; NAN for others */
+    double value_db;                                    /* the criterion's; NAN for a positive impulse */
     double level_db;                                    /* received: summed over the window, or the loudest */
+    double value_pa_s, level_pa_s;                      /* of a positive impulse; NAN for all others */
     double at_750_m_db;                                 /* the same at 750 m */
-    double distance_m, distance_low_m, distance_high_m; /* where the value is just met; 0: nowhere */
+    double distance_m, distance_low_m, distance_high_m; /* where the value is just met; 0: nowhere; INFINITY:
+                                                           beyond what is computed; NAN: unknown */
+    char distance[NOTE_NAME_SIZE];                      /* the same in words */
     uint32_t n;                                         /* sounds in the window */
-    bool reached;                                       /* level_db is at or above value_db */
-    double left;      /* impulses like the last until the value is met at the zone's edge */
-    int64_t start_ns; /* of the window's first sound */
-    bool unverified;  /* some number of the criterion is from memory */
+    uint32_t n_clipped, n_quiet;                        /* of them: lower bounds; below effective quiet */
+    uint32_t n_unweighted;    /* of them: without bands, so missing from a weighted sum */
+    uint32_t n_without_range; /* of them: missing from what is said of distances */
+    bool reached;             /* level_db is at or above value_db */
+    double left;              /* impulses like the last until the value is met at the zone's edge */
+    int64_t start_ns;         /* of the window's first sound */
+    bool unverified;          /* some number of the criterion is from memory */
+};
+
+#define FLOW_MAX_REDUCTIONS 16
+
+/* What a quieting measure takes off the SEL as a hearing group hears it. */
+struct source_reduction {
+    char weighting[NOTE_NAME_SIZE]; /* with its guidance; "none" */
+    double db, low_db, high_db;     /* the bounds: every band at its bound at once */
 };
 
 /* Three numbers about the source that are never mixed, of the job's median impulse so far. */
@@ -202,7 +218,17 @@ struct source_outcome {
     double insertion_db, insertion_low_db,
         insertion_high_db; /* broadband, of the quieting measure; NAN where unknown */
     bool quieting_on;
-    char reason[FLOW_TEXT_SIZE]; /* why a number is missing */
+    uint32_t n_quieting_off, n_quieting_on; /* impulses without and with it */
+    uint32_t n_insertion_bands;             /* decidecades from LEVEL_FIRST_BAND up; 0: unknown */
+    double insertion_band_db[LEVEL_MAX_BANDS], insertion_band_low_db[LEVEL_MAX_BANDS],
+        insertion_band_high_db[LEVEL_MAX_BANDS]; /* 90 % interval; NAN where not known */
+    uint32_t n_reductions;
+    struct source_reduction reductions[FLOW_MAX_REDUCTIONS];
+    double quieting_falls_db;     /* how much less it takes off than at first; NAN where it does not fall */
+    char warning[FLOW_TEXT_SIZE]; /* early warning of the soft start, in words; empty: none */
+    uint32_t n_clipped, n_overlapped, n_weak;           /* of the n_impulses */
+    uint32_t n_other, n_unknown, n_relative, n_refused; /* left out of every sum of the job */
+    char reason[FLOW_TEXT_SIZE];                        /* why a number is missing */
 };
 
 enum outcome_kind {

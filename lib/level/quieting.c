@@ -4,10 +4,12 @@
 #include "base/units.h"
 #include <math.h>
 
-#define LEAST_SPREAD_DB 0.2 /* levels are never steadier than this in the sea (common practice, no source)   \
-                             */
-#define SPREAD_BOUND 1.2 /* upper 95 % bound of a standard deviation from 50 normal values, over the value   \
-                          */
+#define LEAST_SPREAD_DB                                                                                      \
+    0.2 /* levels are never steadier than this in the sea (common practice, no source)                       \
+         */
+#define SPREAD_BOUND                                                                                         \
+    1.2 /* upper 95 % bound of a standard deviation from 50 normal values, over the value                    \
+         */
 #define LEAST_K 0.5
 
 static void sum_push(struct quieting_sum *sum, double x)
@@ -90,7 +92,9 @@ enum status quieting_get(const struct quieting *quieting, struct insertion_loss 
     *out = (struct insertion_loss){
         .matched = matched, .n_off = off->n, .n_on = on->n, .broadband = compare(off, on)};
     for (uint32_t i = 0; i < LEVEL_MAX_BANDS; i++) {
-        out->band[i] = compare(&quieting->band[0][matched][i], &quieting->band[1][matched][i]);
+        const struct quieting_sum *without = &quieting->band[0][matched][i];
+        out->band[i] = compare(without, &quieting->band[1][matched][i]);
+        out->without_db[i] = without->n < QUIETING_LEAST_IMPULSES ? NAN : without->mean;
         if (isfinite(out->band[i].db))
             out->n_bands = i + 1;
     }

@@ -62,6 +62,7 @@ struct insertion_loss {
     bool matched; /* for energy */
     uint64_t n_off, n_on;
     struct quieting_loss broadband, band[LEVEL_MAX_BANDS];
+    double without_db[LEVEL_MAX_BANDS]; /* mean level without the measure; matched: at 1 kJ; NAN: too few */
     uint32_t n_bands;
 };
 

@@ -36,7 +36,10 @@ const struct schema_object views_schema[] = {
         COLUMN("peak_db") COLUMN("at_750_m_db") COLUMN("at_750_m_low_db") COLUMN("at_750_m_high_db")
         COLUMN("back_db") COLUMN("back_low_db") COLUMN("back_high_db") COLUMN("model") COLUMN("n_db")
         COLUMN("reason") COLUMN("quieting_on") COLUMN("insertion_db") COLUMN("insertion_low_db")
-        COLUMN("insertion_high_db")),
+        COLUMN("insertion_high_db") COLUMN("insertion_bands_db") COLUMN("insertion_bands_low_db")
+        COLUMN("insertion_bands_high_db") COLUMN("reductions") COLUMN("n_quieting_off") COLUMN("n_quieting_on")
+        COLUMN("quieting_falls_db") COLUMN("warning") COLUMN("n_clipped") COLUMN("n_overlapped")
+        COLUMN("n_weak") COLUMN("n_other") COLUMN("n_unknown") COLUMN("n_relative") COLUMN("n_refused")),
     VIEW("call",
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
@@ -69,7 +72,9 @@ const struct schema_object views_schema[] = {
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("criteria") COLUMN("criterion") COLUMN("metric")
         COLUMN("weighting") COLUMN("window") COLUMN("reference") COLUMN("value_db") COLUMN("level_db")
         COLUMN("at_750_m_db") COLUMN("distance_m") COLUMN("distance_low_m") COLUMN("distance_high_m")
-        COLUMN("n") COLUMN("reached") COLUMN("impulses_left") COLUMN("start_s") COLUMN("unverified")),
+        COLUMN("n") COLUMN("reached") COLUMN("impulses_left") COLUMN("start_s") COLUMN("unverified")
+        COLUMN("effect") COLUMN("limit_range_m") COLUMN("value_pa_s") COLUMN("level_pa_s") COLUMN("distance")
+        COLUMN("n_clipped") COLUMN("n_quiet") COLUMN("n_unweighted") COLUMN("n_without_range")),
     VIEW("contact",
         COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
         COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN("bearing_deg")

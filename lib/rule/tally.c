@@ -2,7 +2,10 @@
 #include "rule/tally.h"
 #include "base/time.h"
 #include "level/quieting.h"
+#include "rule/tally_fill.h"
 #include "rule/tally_limits.h"
+#include "rule/tally_quieting.h"
+#include "rule/tally_warning.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -19,7 +22,10 @@ struct sums {
     float sel_db[KEPT_IMPULSES]; /* of the job, a ring */
     double peak_db;
     bool changed;
+    uint32_t n_clipped, n_overlapped, n_weak;           /* of them */
+    uint32_t n_other, n_unknown, n_relative, n_refused; /* of the job, not among them */
     struct tally_limits limits;
+    struct tally_warnings warnings;
     struct quieting quieting; /* of the job */
     bool said_falling;
     enum zone_grade said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */
@@ -73,6 +79,8 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
     for (uint32_t i = 0; i < setup->n_streams && status == STATUS_OK; i++) {
         tally->sums[i].peak_db = -INFINITY;
         tally_limits_reset(&tally->sums[i].limits, setup->criteria);
+        tally_warnings_reset(&tally->sums[i].warnings, setup->criteria, setup->zone_edge_m,
+                             setup->soft_start_s);
         status = exposure_create(&exposure, &tally->sums[i].exposure);
     }
     if (status != STATUS_OK) {
@@ -98,11 +106,27 @@ static double range_of(const struct tally *tally, uint32_t stream, uint32_t chan
     return tally->setup.range_m[stream - 1][channel - 1];
 }
 
+/* Whether an impulse belongs into the sums; counts those that do not. Of ours that is said, too. */
+static bool is_summed(struct sums *sums, const struct impulse *impulse)
+{
+    bool ours = impulse->whose == IMPULSE_OURS;
+    sums->n_other += impulse->whose == IMPULSE_OTHERS;
+    sums->n_unknown += impulse->whose == IMPULSE_UNKNOWN;
+    sums->n_refused += ours && impulse->refused;
+    sums->n_relative += ours && impulse->relative && !impulse->refused;
+    if (!ours || (!impulse->refused && !impulse->relative))
+        return ours;
+    if (sums->channel == 0)
+        sums->channel = impulse->channel;
+    sums->changed = true;
+    return false;
+}
+
 static void take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
 {
     struct sums *sums = &tally->sums[stream - 1];
     struct exposure_sound sound;
-    if (impulse->whose != IMPULSE_OURS || impulse->relative || impulse->refused)
+    if (!is_summed(sums, impulse))
         return;
     exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
                         range_of(tally, stream, impulse->channel), &sound);
@@ -111,6 +135,9 @@ static void take_impulse(struct tally *tally, uint32_t stream, const struct impu
     sums->channel = impulse->channel;
     sums->sel_db[sums->n_impulses++ % KEPT_IMPULSES] = (float)impulse->sel_db;
     sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
+    sums->n_clipped += impulse->clipped;
+    sums->n_overlapped += impulse->overlapped;
+    sums->n_weak += impulse->weak;
     sums->changed = true;
     const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
                                     .range_m = range_of(tally, stream, impulse->channel),
@@ -119,6 +146,7 @@ static void take_impulse(struct tally *tally, uint32_t stream, const struct impu
                                     .level_spread_db = tally->setup.level_spread_db,
                                     .scatter_db = tally->setup.scatter_db};
     tally_limits_push(&sums->limits, impulse, &move);
+    tally_warnings_push(&sums->warnings, impulse, &move);
     struct quieting_impulse quieted = {
         .on = tally->quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
     memcpy(quieted.band_db, impulse->band_sel_db, sizeof quieted.band_db);
@@ -145,7 +173,8 @@ static void begin_job(struct tally *tally, const char *job)
     for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
         struct sums *sums = &tally->sums[i];
         exposure_begin_job(sums->exposure);
-        sums->n_impulses = 0;
+        sums->n_impulses = sums->n_clipped = sums->n_overlapped = sums->n_weak = 0;
+        sums->n_other = sums->n_unknown = sums->n_relative = sums->n_refused = 0;
         sums->peak_db = -INFINITY;
         tally_limits_begin_job(&sums->limits);
         quieting_reset(&sums->quieting);
@@ -166,52 +195,6 @@ static void fill_place(const struct tally *tally, uint32_t i, uint32_t *stream, 
     memcpy(job, tally->job, IMPULSE_JOB_SIZE);
 }
 
-static void fill_criterion(const struct criterion *criterion, struct exposure_outcome *out)
-{
-    char weighting[WEIGHTING_NAME_SIZE] = "none";
-    if (criterion->weighting)
-        weighting_name(criterion->weighting, weighting);
-    snprintf(out->set, sizeof out->set, "%s", criterion->set);
-    snprintf(out->criterion, sizeof out->criterion, "%s", criterion->name);
-    snprintf(out->metric, sizeof out->metric, "%s", criterion_metric_text(criterion->metric));
-    snprintf(out->weighting, sizeof out->weighting, "%s", weighting);
-    snprintf(out->window, sizeof out->window, "%s", criterion_window_text(criterion->window));
-    snprintf(out->reference, sizeof out->reference, "%s", criterion_reference(criterion->metric));
-    out->value_db = criterion->value;
-    out->unverified = criterion_unverified(criterion);
-}
-
-/* False where the criterion judges other sound or nothing was added to it yet. */
-static bool fill_exposure(const struct tally *tally, uint32_t i, uint32_t c, int64_t watch_ns,
-                          struct exposure_outcome *out)
-{
-    struct exposure *exposure = tally->sums[i].exposure;
-    const struct criterion *criterion = &tally->setup.criteria->items[c];
-    struct exposure_state state;
-    struct exposure_distance distance;
-    struct exposure_left left;
-    if (exposure_get(exposure, c, watch_ns, &state) != STATUS_OK || state.first_ns < 0)
-        return false;
-    fill_place(tally, i, &out->stream, &out->channel, out->job);
-    fill_criterion(criterion, out);
-    out->level_db = finite_or_nan(state.level_db);
-    out->at_750_m_db = finite_or_nan(state.at_reference_db);
-    out->n = (uint32_t)state.n;
-    out->reached = state.reached;
-    out->start_ns = state.first_ns;
-    out->distance_m = out->distance_low_m = out->distance_high_m = out->left = NAN;
-    if (exposure_get_distance(exposure, c, criterion->flee_m_s, watch_ns, &distance) == STATUS_OK) {
-        out->distance_m = finite_or_nan(distance.distance_m);
-        out->distance_low_m = finite_or_nan(distance.low_m);
-        out->distance_high_m = finite_or_nan(distance.high_m);
-    }
-    if (isfinite(tally->setup.zone_edge_m) &&
-        exposure_get_left(exposure, c, tally->setup.zone_edge_m, criterion->flee_m_s, watch_ns, &left) ==
-            STATUS_OK)
-        out->left = left.left;
-    return true;
-}
-
 static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
                         const struct finding_outcome *finding, const struct outcome_sink *sink)
 {
@@ -228,7 +211,7 @@ static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct
 {
     struct sums *sums = &tally->sums[i];
     struct finding_outcome finding;
-    if (!isfinite(tally->setup.zone_edge_m) || !isfinite(exposure->distance_m))
+    if (!isfinite(tally->setup.zone_edge_m) || isnan(exposure->distance_m))
         return;
     const struct zone_distance distance = {.zone_m = tally->setup.zone_edge_m,
                                            .distance_m = exposure->distance_m,
@@ -245,11 +228,14 @@ static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, con
 {
     for (uint32_t c = 0; c < tally->setup.criteria->n; c++) {
         struct outcome outcome = {.kind = OUTCOME_EXPOSURE, .run = tally->run, .watch_ns = watch_ns};
-        if (!fill_exposure(tally, i, c, watch_ns, &outcome.as.exposure))
+        struct exposure_outcome *exposure = &outcome.as.exposure;
+        if (tally_fill_exposure(tally->sums[i].exposure, &tally->setup.criteria->items[c], c,
+                                tally->setup.zone_edge_m, watch_ns, exposure) != STATUS_OK)
             continue;
+        fill_place(tally, i, &exposure->stream, &exposure->channel, exposure->job);
         outcome.counter = ++tally->n_exposures;
         sink->take(sink->context, &outcome);
-        check_zone(tally, i, c, &outcome.as.exposure, watch_ns, sink);
+        check_zone(tally, i, c, exposure, watch_ns, sink);
     }
     struct finding_outcome finding;
     while (tally_limits_next(&tally->sums[i].limits, tally->setup.criteria, tally->job, &finding))
@@ -266,6 +252,8 @@ static double median_sel_db(const struct sums *sums)
 {
     float sorted[KEPT_IMPULSES];
     uint32_t n = sums->n_impulses < KEPT_IMPULSES ? sums->n_impulses : KEPT_IMPULSES;
+    if (n == 0)
+        return NAN;
     memcpy(sorted, sums->sel_db, n * sizeof sorted[0]);
     qsort(sorted, n, sizeof sorted[0], by_level);
     return n % 2 ? sorted[n / 2] : 0.5 * ((double)sorted[n / 2 - 1] + sorted[n / 2]);
@@ -285,8 +273,10 @@ static void fill_numbers(const struct tally *tally, double sel_db, double range_
     struct source_numbers numbers;
     out->at_750_m_db = out->at_750_m_low_db = out->at_750_m_high_db = NAN;
     out->back_db = out->back_low_db = out->back_high_db = out->n_db = NAN;
-    if (source_numbers_get(&measurement, &tally->setup.shape, &law, &numbers) != STATUS_OK)
+    if (source_numbers_get(&measurement, &tally->setup.shape, &law, &numbers) != STATUS_OK) {
+        snprintf(out->reason, sizeof out->reason, "no impulse with a level in dB re 1 uPa");
         return;
+    }
     if (numbers.at_750_m.known) {
         out->at_750_m_db = numbers.at_750_m.db;
         out->at_750_m_low_db = numbers.at_750_m.low_db;
@@ -303,31 +293,27 @@ static void fill_numbers(const struct tally *tally, double sel_db, double range_
     out->n_db = numbers.n_db;
 }
 
-static void fill_quieting(const struct tally *tally, const struct sums *sums, struct source_outcome *out)
-{
-    struct insertion_loss loss;
-    out->quieting_on = tally->quieting_on;
-    out->insertion_db = out->insertion_low_db = out->insertion_high_db = NAN;
-    if (quieting_get(&sums->quieting, &loss) != STATUS_OK)
-        return;
-    out->insertion_db = loss.broadband.db;
-    out->insertion_low_db = loss.broadband.low_db;
-    out->insertion_high_db = loss.broadband.high_db;
-}
-
 /* A quieting measure that takes off less than it did, said once a job. */
 static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
     struct sums *sums = &tally->sums[i];
-    struct finding_outcome finding = {.code = "quieting falls", .grade = "indicative"};
-    double fall_db;
-    if (sums->said_falling || !quieting_falls(&sums->quieting, &fall_db))
+    struct finding_outcome finding;
+    if (sums->said_falling || !tally_quieting_finding(&sums->quieting, tally->job, &finding))
         return;
     sums->said_falling = true;
-    memcpy(finding.job, tally->job, sizeof finding.job);
-    snprintf(finding.detail, sizeof finding.detail,
-             "the quieting measure takes off %.1f dB less than in its first impulses", fall_db);
     say_finding(tally, i, watch_ns, &finding, sink);
+}
+
+static void fill_counts(const struct sums *sums, struct source_outcome *out)
+{
+    out->n_impulses = sums->n_impulses;
+    out->n_clipped = sums->n_clipped;
+    out->n_overlapped = sums->n_overlapped;
+    out->n_weak = sums->n_weak;
+    out->n_other = sums->n_other;
+    out->n_unknown = sums->n_unknown;
+    out->n_relative = sums->n_relative;
+    out->n_refused = sums->n_refused;
 }
 
 static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
@@ -335,15 +321,17 @@ static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const 
     const struct sums *sums = &tally->sums[i];
     struct outcome outcome = {.kind = OUTCOME_SOURCE, .run = tally->run, .watch_ns = watch_ns};
     struct source_outcome *out = &outcome.as.source;
-    if (sums->n_impulses == 0)
+    if (sums->n_impulses + sums->n_relative + sums->n_refused == 0)
         return;
     fill_place(tally, i, &out->stream, &out->channel, out->job);
-    out->n_impulses = sums->n_impulses;
+    fill_counts(sums, out);
     out->range_m = range_of(tally, i + 1, sums->channel);
     out->sel_db = median_sel_db(sums);
     out->peak_db = finite_or_nan(sums->peak_db);
     fill_numbers(tally, out->sel_db, out->range_m, out);
-    fill_quieting(tally, sums, out);
+    out->quieting_on = tally->quieting_on;
+    tally_fill_quieting(&sums->quieting, tally->setup.criteria, out);
+    tally_warnings_text(&sums->warnings, tally->setup.criteria, out->warning);
     outcome.counter = ++tally->n_sources;
     sink->take(sink->context, &outcome);
 }
@@ -387,6 +375,9 @@ enum status tally_take(struct tally *tally, const struct outcome *outcome, const
         tally->said_minute = minute;
         say_all(tally, outcome->watch_ns, sink);
     }
+    if (outcome->kind == OUTCOME_PHASE)
+        for (uint32_t i = 0; i < tally->setup.n_streams; i++)
+            tally_warnings_phase(&tally->sums[i].warnings, outcome->as.phase.phase, outcome->watch_ns);
     if (outcome->kind == OUTCOME_EVENT)
         take_event(tally, outcome, sink);
     return STATUS_OK;

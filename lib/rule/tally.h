@@ -31,6 +31,7 @@ struct tally_setup {
     double level_spread_db;             /* of calibration and place */
     double scatter_db;                  /* of one impulse about the loss law */
     double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */
+    double soft_start_s;                /* the permit's least; 0: none, then there is no early warning */
     int64_t day_start_ns;               /* watch time of any midnight where days are counted */
 };
 

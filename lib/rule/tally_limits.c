@@ -1,10 +1,9 @@
 /* Limits of one impulse's level, and zones that are too small; see tally_limits.h. */
 #include "rule/tally_limits.h"
+#include "rule/tally_fill.h"
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
-
-#define BOUND 1.6449 /* standard deviations to the bounds of a 90 % interval */
 
 void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria)
 {
@@ -41,21 +40,30 @@ static double level_of(const struct impulse *impulse, enum criterion_metric metr
     }
 }
 
+bool tally_move_level(const struct impulse *impulse, const struct tally_move *move,
+                      enum criterion_metric metric, double to_m, struct tally_moved *out)
+{
+    double level_db = level_of(impulse, metric);
+    if (!(move->range_m > 0) || impulse->overlapped || !isfinite(level_db))
+        return false;
+    double decades = log10(to_m / move->range_m);
+    out->measured = zone_is_measured(move->role, move->range_m, to_m);
+    out->level_db = level_db - (out->measured ? 0 : move->loss_n_db * decades);
+    out->constant_spread_db = hypot(move->level_spread_db, move->loss_n_spread_db * decades);
+    out->spread_db = hypot(out->constant_spread_db, move->scatter_db);
+    return true;
+}
+
 void tally_limits_push(struct tally_limits *limits, const struct impulse *impulse,
                        const struct tally_move *move)
 {
-    if (!(move->range_m > 0) || impulse->overlapped)
-        return;
     for (uint32_t i = 0; i < limits->n; i++) {
         struct tally_limit *one = &limits->limits[i];
-        double decades = log10(one->limit.range_m / move->range_m);
-        bool measured = zone_is_measured(move->role, move->range_m, one->limit.range_m);
-        double level_db = level_of(impulse, one->limit.metric) - (measured ? 0 : move->loss_n_db * decades);
-        double spread_db = sqrt(pow(move->level_spread_db, 2) + pow(move->scatter_db, 2) +
-                                pow(move->loss_n_spread_db * decades, 2));
-        /* What is not finite is left out: a refused or missing level says nothing of the limit. */
-        (void)zone_tally_push(&one->tally, &one->limit, one->limit.metric, level_db,
-                              level_db - BOUND * spread_db, measured);
+        struct tally_moved moved;
+        /* A refused or missing level says nothing of the limit. */
+        if (tally_move_level(impulse, move, one->limit.metric, one->limit.range_m, &moved))
+            (void)zone_tally_push(&one->tally, &one->limit, one->limit.metric, moved.level_db,
+                                  moved.level_db - TALLY_BOUND * moved.spread_db, moved.measured);
     }
 }
 
@@ -100,8 +108,11 @@ bool tally_zone_finding(const struct criterion *criterion, const struct zone_dis
         return false;
     *said = grade;
     fill(criterion, "zone too small", grade, job, out);
+    char met[NOTE_NAME_SIZE], least[NOTE_NAME_SIZE];
+    tally_distance_text(distance->distance_m, NAN, NAN, met);
+    tally_distance_text(distance->low_m, NAN, NAN, least);
     snprintf(out->detail, sizeof out->detail,
-             "the criterion is met at %.0f m (90 %%: at least %.0f m), beyond the zone of %.0f m",
-             distance->distance_m, distance->low_m, distance->zone_m);
+             "the criterion is met at %s (90 %%: at least %s), beyond the zone of %.0f m", met, least,
+             distance->zone_m);
     return true;
 }

@@ -34,6 +34,17 @@ struct tally_move {
     double range_m; /* NAN: unknown; then nothing is judged */
     double loss_n_db, loss_n_spread_db, level_spread_db, scatter_db;
 };
+/* One level there. */
+struct tally_moved {
+    bool measured; /* the channel stands there: nothing was moved */
+    double level_db;
+    double constant_spread_db; /* standard deviation of what is wrong in all levels alike */
+    double spread_db;          /* of this one */
+};
+#define TALLY_BOUND 1.6449 /* standard deviations to the bounds of a 90 % interval */
+/* False where the range is unknown, another impulse overlaps this one, or it has no such level. */
+bool tally_move_level(const struct impulse *impulse, const struct tally_move *move,
+                      enum criterion_metric metric, double to_m, struct tally_moved *out);
 void tally_limits_push(struct tally_limits *limits, const struct impulse *impulse,
                        const struct tally_move *move);
 

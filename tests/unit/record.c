@@ -380,6 +380,50 @@ static void conclusions_are_well_formed(void **state)
     text_destroy(&body);
 }
 
+/* What is unknown is null, what has no unit in dB is not in dB, and arrays have a place for every band. */
+static void sums_are_well_formed(void **state)
+{
+    (void)state;
+    struct text body = {0};
+    struct outcome exposure = {.kind = OUTCOME_EXPOSURE, .run = 1, .counter = 3};
+    exposure.as.exposure = (struct exposure_outcome){.value_db = NAN,
+                                                     .level_db = NAN,
+                                                     .value_pa_s = 30,
+                                                     .level_pa_s = 41.5,
+                                                     .limit_range_m = NAN,
+                                                     .distance_m = INFINITY,
+                                                     .distance = "beyond 1000 km",
+                                                     .n_clipped = 2};
+    assert_int_equal(entry_body(&exposure, ZERO_NS, &body), STATUS_OK);
+    assert_well_formed(body.data, "1.0.exposure.3");
+    assert_non_null(strstr(body.data, "\"level_db\":null,\"level_pa_s\":41.500000,"));
+    assert_non_null(strstr(body.data, "\"value_db\":null,\"value_pa_s\":30.000000,"));
+    assert_non_null(strstr(body.data, "\"distance\":\"beyond 1000 km\","));
+    assert_non_null(strstr(body.data, "\"distance_m\":null,"));
+    assert_non_null(strstr(body.data, "\"n_clipped\":2,"));
+    struct outcome source = {.kind = OUTCOME_SOURCE, .run = 1, .counter = 4};
+    struct source_outcome *said = &source.as.source;
+    said->n_insertion_bands = 2;
+    said->insertion_band_db[0] = said->insertion_band_low_db[0] = said->insertion_band_high_db[0] = NAN;
+    said->insertion_band_db[1] = 8.126;
+    said->n_reductions = 2;
+    said->reductions[0] = (struct source_reduction){"NMFS 2024 LF", 8.4, 7.5, 9.25};
+    said->reductions[1] = (struct source_reduction){"NMFS 2024 HF", 14.8, 13, 16};
+    said->quieting_falls_db = NAN;
+    snprintf(said->warning, sizeof said->warning, "may pass");
+    assert_int_equal(entry_body(&source, ZERO_NS, &body), STATUS_OK);
+    assert_well_formed(body.data, "1.0.source.4");
+    assert_non_null(strstr(body.data, "\"insertion_bands_db\":[null,8.13],"));
+    assert_non_null(strstr(body.data, "\"reductions\":[{\"db\":8.40,\"high_db\":9.25,\"low_db\":7.50,"
+                                      "\"weighting\":\"NMFS 2024 LF\"},{\"db\":14.80,"));
+    assert_non_null(strstr(body.data, "\"quieting_falls_db\":null,"));
+    assert_non_null(strstr(body.data, "\"warning\":\"may pass\""));
+    said->warning[0] = '\0';
+    assert_int_equal(entry_body(&source, ZERO_NS, &body), STATUS_OK);
+    assert_non_null(strstr(body.data, "\"warning\":null"));
+    text_destroy(&body);
+}
+
 static void marks_are_well_formed(void **state)
 {
     (void)state;
@@ -685,6 +729,7 @@ int main(void)
         cmocka_unit_test(events_come_back_from_their_bodies),
         cmocka_unit_test(a_call_is_written_as_documented),
         cmocka_unit_test(conclusions_are_well_formed),
+        cmocka_unit_test(sums_are_well_formed),
         cmocka_unit_test(marks_are_well_formed),
         cmocka_unit_test(foreign_bodies_are_refused),
         cmocka_unit_test(levels_become_minutes),
