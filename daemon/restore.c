@@ -16,6 +16,7 @@ struct rebuilding {
     int64_t now_ns;     /* how far the rebuilt watch has come */
     enum status status; /* of what the sinks did */
     struct text body;
+    struct entry_levels levels; /* of the entry that is being taken */
 };
 
 static bool is_conclusion(const char *kind)
@@ -31,7 +32,7 @@ static void forget(struct restored_entry *entry)
     free(entry->body);
 }
 
-/* What the tally said of the past is in the ledger. */
+/* The tally is silent: what it said of the past is in the ledger. */
 static void drop_sums(void *context, const struct outcome *outcome)
 {
     (void)context;
@@ -118,6 +119,39 @@ static enum status push_input(struct rebuilding *rebuilding, const struct entry 
     return status == STATUS_OK ? rebuilding->status : status;
 }
 
+/* The sums of continuous sound are those of its seconds, which no rule reads. */
+static enum status take_levels(struct rebuilding *rebuilding, const struct entry *entry, int64_t watch_ns)
+{
+    struct entry_levels *levels = &rebuilding->levels;
+    enum status status = entry_levels(entry->body, levels);
+    struct outcome outcome = {.kind = OUTCOME_EVENT, .watch_ns = watch_ns};
+    struct event *event = &outcome.as.event;
+    for (uint32_t i = 0; i < levels->n && status == STATUS_OK; i++) {
+        outcome.run = levels->run;
+        outcome.stream = levels->stream;
+        *event = (struct event){.kind = EVENT_LEVEL, .stream = levels->stream, .known_ns = watch_ns};
+        event->as.level = levels->seconds[i];
+        status = tally_take(rebuilding->tally, &outcome, &(struct outcome_sink){drop_sums, NULL});
+    }
+    if (status != STATUS_OK)
+        snprintf(rebuilding->problem, LEDGER_PROBLEM_SIZE, "entry %lld (level) cannot be taken again: %s",
+                 (long long)entry->seq, status_text(status));
+    return status;
+}
+
+/* What the ledger holds for the tally besides the inputs of the watch. */
+static enum status take_for_tally(struct rebuilding *rebuilding, const struct entry *entry, int64_t watch_ns)
+{
+    struct outcome outcome;
+    if (!rebuilding->tally)
+        return STATUS_OK;
+    if (strcmp(entry->kind, "level") == 0 && tally_wants_levels(rebuilding->tally))
+        return take_levels(rebuilding, entry, watch_ns);
+    if (strcmp(entry->kind, "finding") == 0 && entry_finding(entry->body, &outcome) == STATUS_OK)
+        tally_set_said(rebuilding->tally, &outcome);
+    return STATUS_OK;
+}
+
 static enum status take_entry(void *context, const struct entry *entry)
 {
     struct rebuilding *rebuilding = context;
@@ -136,11 +170,11 @@ static enum status take_entry(void *context, const struct entry *entry)
         restored->last_ns = watch_ns;
     if (strcmp(entry->kind, "run") == 0)
         restored->last_run++;
-    if (!is_conclusion(entry->kind))
-        return push_input(rebuilding, entry, watch_ns);
-    enum status status = pass_time(rebuilding, watch_ns);
-    meet_conclusion(rebuilding, entry);
-    return status;
+    enum status status = is_conclusion(entry->kind) ? pass_time(rebuilding, watch_ns)
+                                                    : push_input(rebuilding, entry, watch_ns);
+    if (is_conclusion(entry->kind))
+        meet_conclusion(rebuilding, entry);
+    return status == STATUS_OK ? take_for_tally(rebuilding, entry, watch_ns) : status;
 }
 
 enum status restore_watch(struct ledger *ledger, struct watch *watch, struct tally *tally,
@@ -149,8 +183,12 @@ enum status restore_watch(struct ledger *ledger, struct watch *watch, struct tal
     *out = (struct restored){0};
     *problem = '\0';
     struct rebuilding rebuilding = {.watch = watch, .tally = tally, .restored = out, .problem = problem};
+    if (tally)
+        tally_set_silent(tally, true);
     enum status status = ledger_read(ledger, &(struct ledger_query){0}, take_entry, &rebuilding);
     text_destroy(&rebuilding.body);
+    if (tally)
+        tally_set_silent(tally, false);
     if (status != STATUS_OK) {
         if (*problem == '\0')
             snprintf(problem, LEDGER_PROBLEM_SIZE, "the watch cannot be rebuilt: %s", status_text(status));

@@ -206,6 +206,8 @@ static void take_single(const struct exposure *exposure, struct prepared *item,
     double weighted_db = level_db + weighting_gain_db(item, received);
     item->latest_db = weighted_db;
     struct loudest *loudest = &item->loudest;
+    if (sound->before_job)
+        return;
     if (weighted_db > loudest->received_db)
         loudest->received_db = weighted_db;
     if (!ranged || isnan(weighted_db) || item->criterion.metric == METRIC_POSITIVE_IMPULSE)
@@ -252,6 +254,13 @@ static void keep_recent(struct exposure *exposure, const struct bucket *placed, 
         exposure->n_recent++;
 }
 
+static void keep_in_job(struct exposure *exposure, const struct bucket *received, int64_t time_ns)
+{
+    bucket_add(&exposure->received_job, received);
+    if (exposure->job_first_ns < 0 || time_ns < exposure->job_first_ns)
+        exposure->job_first_ns = time_ns;
+}
+
 enum status exposure_push(struct exposure *exposure, const struct exposure_sound *sound)
 {
     bool continuous = exposure->sound == SOUND_CONTINUOUS;
@@ -272,15 +281,16 @@ enum status exposure_push(struct exposure *exposure, const struct exposure_sound
             take_single(exposure, item, sound, &received, ranged);
     }
     keep(&exposure->received_ring, &received, sound->time_ns);
-    bucket_add(&exposure->received_job, &received);
-    if (exposure->job_first_ns < 0 || sound->time_ns < exposure->job_first_ns)
-        exposure->job_first_ns = sound->time_ns;
+    if (!sound->before_job)
+        keep_in_job(exposure, &received, sound->time_ns);
     if (ranged) {
         struct bucket placed = received;
         place(exposure, sound->range_m, &placed);
         keep(&exposure->placed_ring, &placed, sound->time_ns);
-        keep(&exposure->placed_job, &placed, sound->time_ns);
-        keep_recent(exposure, &placed, sound->time_ns);
+        if (!sound->before_job) {
+            keep(&exposure->placed_job, &placed, sound->time_ns);
+            keep_recent(exposure, &placed, sound->time_ns);
+        }
     }
     if (sound->time_ns > exposure->latest_ns)
         exposure->latest_ns = sound->time_ns;

@@ -78,8 +78,9 @@ struct exposure_sound {
     double positive_impulse_pa_s;
     uint32_t n_bands; /* decidecades from LEVEL_FIRST_BAND up; 0: none, then no weighted sum grows */
     double band_sel_db[LEVEL_MAX_BANDS];
-    bool relative; /* refused */
-    bool clipped;  /* levels are lower bounds */
+    bool relative;   /* refused */
+    bool clipped;    /* levels are lower bounds */
+    bool before_job; /* it sounded before the job began: it counts for the day and 24 h only */
 };
 
 /* Against one criterion now. */

@@ -2,6 +2,7 @@
 #include "level/zone_check.h"
 #include "level/source.h"
 #include <math.h>
+#include <string.h>
 
 enum status zone_limit_of(const struct criterion *criterion, struct zone_limit *out)
 {
@@ -93,4 +94,11 @@ enum zone_warning zone_warn(const struct trend *trend, double x_full, const stru
 const char *zone_grade_text(enum zone_grade grade)
 {
     return grade == ZONE_FIRM ? "firm" : grade == ZONE_INDICATIVE ? "indicative" : "";
+}
+
+enum zone_grade zone_grade_from_text(const char *text)
+{
+    return strcmp(text, "firm") == 0         ? ZONE_FIRM
+           : strcmp(text, "indicative") == 0 ? ZONE_INDICATIVE
+                                             : ZONE_NOTHING;
 }

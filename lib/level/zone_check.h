@@ -88,5 +88,6 @@ enum zone_warning zone_warn(const struct trend *trend, double x_full, const stru
 
 /* "firm", "indicative", "" for the others; never NULL. */
 const char *zone_grade_text(enum zone_grade grade);
+enum zone_grade zone_grade_from_text(const char *text); /* ZONE_NOTHING for any other text */
 
 #endif

@@ -35,6 +35,19 @@ enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, stru
  * ...); STATUS_BAD_FORMAT for a body that this program did not write. */
 enum status entry_event(const char *kind, const char *body, int64_t watch_ns, struct event *out);
 
+/* The seconds of a `level` entry, which holds a minute: what they were, but for the moments and the time
+ * weighted maxima, which no sum reads. STATUS_BAD_FORMAT for a body that this program did not write (then
+ * *out is unusable), STATUS_NO_MEMORY. */
+#define ENTRY_LEVELS_MAX 60
+struct entry_levels {
+    uint32_t run, stream, n;
+    struct level seconds[ENTRY_LEVELS_MAX];
+};
+enum status entry_levels(const char *body, struct entry_levels *out);
+
+/* The finding of a `finding` entry, but for its causes and its time. The same errors. */
+enum status entry_finding(const char *body, struct outcome *out);
+
 /* Makes an event what its entry will say of it: numbers and times rounded by base/round.h, bytes of texts
  * that are not UTF-8 replaced by '?'. For every event at the watch's door (before watch_push), so that the
  * watch at sea and a rerun work on the same event: after it, entry_event(entry_body(event)) is the event. */

@@ -3,19 +3,28 @@
 #include "base/round.h"
 #include "base/time.h"
 #include "record/entry.h"
+#include "record/reading.h"
 #include <errno.h>
-#include <jansson.h>
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-/* A parsed body; the first thing that is wrong makes it not good, and the rest is then skipped. */
-struct reading {
-    json_t *root;
-    bool good;
-};
+enum status reading_begin(const char *body, struct reading *out)
+{
+    json_error_t error;
+    *out = (struct reading){.root = json_loads(body, JSON_REJECT_DUPLICATES, &error), .good = true};
+    if (out->root)
+        return STATUS_OK;
+    return json_error_code(&error) == json_error_out_of_memory ? STATUS_NO_MEMORY : STATUS_BAD_FORMAT;
+}
 
-static json_t *member(struct reading *reading, const char *key, bool required)
+enum status reading_end(struct reading *reading)
+{
+    json_decref(reading->root);
+    return reading->good ? STATUS_OK : STATUS_BAD_FORMAT;
+}
+
+json_t *reading_member(struct reading *reading, const char *key, bool required)
 {
     json_t *value = json_object_get(reading->root, key);
     if (!value && required)
@@ -23,9 +32,9 @@ static json_t *member(struct reading *reading, const char *key, bool required)
     return value;
 }
 
-static void read_text(struct reading *reading, const char *key, bool required, char *out, size_t size)
+void reading_text(struct reading *reading, const char *key, bool required, char *out, size_t size)
 {
-    json_t *value = member(reading, key, required);
+    json_t *value = reading_member(reading, key, required);
     out[0] = '\0';
     if (!value || json_is_null(value))
         return;
@@ -37,9 +46,9 @@ static void read_text(struct reading *reading, const char *key, bool required, c
     memcpy(out, text, json_string_length(value) + 1);
 }
 
-static double read_number(struct reading *reading, const char *key, bool required, double if_null)
+double reading_number(struct reading *reading, const char *key, bool required, double if_null)
 {
-    json_t *value = member(reading, key, required);
+    json_t *value = reading_member(reading, key, required);
     if (!value || json_is_null(value))
         return if_null;
     if (!json_is_number(value)) {
@@ -51,7 +60,7 @@ static double read_number(struct reading *reading, const char *key, bool require
 
 static int64_t read_time(struct reading *reading, const char *key)
 {
-    double seconds = read_number(reading, key, true, NAN);
+    double seconds = reading_number(reading, key, true, NAN);
     /* 9e9 s: beyond it a double no longer holds whole microseconds. */
     if (!(fabs(seconds) < 9e9)) {
         reading->good = false;
@@ -60,9 +69,9 @@ static int64_t read_time(struct reading *reading, const char *key)
     return time_from_s(seconds);
 }
 
-static uint32_t read_count(struct reading *reading, const char *key, bool required)
+uint32_t reading_count(struct reading *reading, const char *key, bool required)
 {
-    json_t *value = member(reading, key, required);
+    json_t *value = reading_member(reading, key, required);
     if (!value)
         return 0;
     json_int_t n = json_integer_value(value);
@@ -73,9 +82,9 @@ static uint32_t read_count(struct reading *reading, const char *key, bool requir
     return (uint32_t)n;
 }
 
-static bool read_bool(struct reading *reading, const char *key, bool required)
+bool reading_bool(struct reading *reading, const char *key, bool required)
 {
-    json_t *value = member(reading, key, required);
+    json_t *value = reading_member(reading, key, required);
     if (value && !json_is_boolean(value))
         reading->good = false;
     return json_is_true(value);
@@ -85,7 +94,7 @@ static bool read_bool(struct reading *reading, const char *key, bool required)
 static int read_word(struct reading *reading, const char *key, int count, const char *(*text)(int))
 {
     char word[NOTE_NAME_SIZE];
-    read_text(reading, key, true, word, sizeof word);
+    reading_text(reading, key, true, word, sizeof word);
     for (int i = 0; i < count; i++)
         if (strcmp(word, text(i)) == 0)
             return i;
@@ -131,9 +140,9 @@ static void read_run(struct reading *reading, struct run_mark *mark)
 
 static void read_unheard(struct reading *reading, struct unheard *unheard)
 {
-    unheard->channel = read_count(reading, "channel", true);
-    unheard->low_hz = read_number(reading, "low_hz", true, 0);
-    unheard->high_hz = read_number(reading, "high_hz", true, INFINITY); /* no upper limit */
+    unheard->channel = reading_count(reading, "channel", true);
+    unheard->low_hz = reading_number(reading, "low_hz", true, 0);
+    unheard->high_hz = reading_number(reading, "high_hz", true, INFINITY); /* no upper limit */
     unheard->start_ns = read_time(reading, "start_s");
     unheard->end_ns = read_time(reading, "end_s");
     unheard->cause = (enum unheard_cause)read_word(reading, "cause", UNHEARD_TOO_QUIET + 1, cause_word);
@@ -141,7 +150,7 @@ static void read_unheard(struct reading *reading, struct unheard *unheard)
 
 static uint32_t read_bands(struct reading *reading, const char *key, double out[LEVEL_MAX_BANDS])
 {
-    json_t *array = member(reading, key, true);
+    json_t *array = reading_member(reading, key, true);
     const size_t n = json_array_size(array);
     if (!json_is_array(array) || n > LEVEL_MAX_BANDS) {
         reading->good = false;
@@ -157,48 +166,48 @@ static uint32_t read_bands(struct reading *reading, const char *key, double out[
 
 static void read_impulse(struct reading *reading, struct impulse *impulse)
 {
-    impulse->channel = read_count(reading, "channel", true);
+    impulse->channel = reading_count(reading, "channel", true);
     impulse->time_ns = read_time(reading, "time_s");
-    impulse->sel_db = read_number(reading, "sel_db", true, NAN);
-    impulse->peak_db = read_number(reading, "peak_db", true, NAN);
-    impulse->peak_to_peak_db = read_number(reading, "peak_to_peak_db", true, NAN);
-    impulse->rms90_db = read_number(reading, "rms90_db", true, NAN);
-    impulse->t90_s = read_number(reading, "t90_s", true, NAN);
-    impulse->background_db = read_number(reading, "background_db", true, NAN);
-    impulse->effective_s = read_number(reading, "effective_s", true, NAN);
-    impulse->kurtosis = read_number(reading, "kurtosis", true, NAN);
-    impulse->window_s = read_number(reading, "window_s", true, NAN);
-    impulse->positive_impulse_pa_s = read_number(reading, "positive_impulse_pa_s", true, NAN);
+    impulse->sel_db = reading_number(reading, "sel_db", true, NAN);
+    impulse->peak_db = reading_number(reading, "peak_db", true, NAN);
+    impulse->peak_to_peak_db = reading_number(reading, "peak_to_peak_db", true, NAN);
+    impulse->rms90_db = reading_number(reading, "rms90_db", true, NAN);
+    impulse->t90_s = reading_number(reading, "t90_s", true, NAN);
+    impulse->background_db = reading_number(reading, "background_db", true, NAN);
+    impulse->effective_s = reading_number(reading, "effective_s", true, NAN);
+    impulse->kurtosis = reading_number(reading, "kurtosis", true, NAN);
+    impulse->window_s = reading_number(reading, "window_s", true, NAN);
+    impulse->positive_impulse_pa_s = reading_number(reading, "positive_impulse_pa_s", true, NAN);
     impulse->n_bands = read_bands(reading, "bands", impulse->band_sel_db);
-    impulse->refused = read_bool(reading, "refused", true);
-    impulse->relative = read_bool(reading, "relative", true);
-    impulse->clipped = read_bool(reading, "clipped", true);
-    impulse->overlapped = read_bool(reading, "overlapped", true);
-    impulse->weak = read_bool(reading, "weak", true);
+    impulse->refused = reading_bool(reading, "refused", true);
+    impulse->relative = reading_bool(reading, "relative", true);
+    impulse->clipped = reading_bool(reading, "clipped", true);
+    impulse->overlapped = reading_bool(reading, "overlapped", true);
+    impulse->weak = reading_bool(reading, "weak", true);
     impulse->whose = (enum impulse_whose)read_word(reading, "whose", IMPULSE_UNKNOWN + 1, whose_word);
-    read_text(reading, "job", true, impulse->job, sizeof impulse->job);
+    reading_text(reading, "job", true, impulse->job, sizeof impulse->job);
 }
 
 static void read_call(struct reading *reading, struct call *call)
 {
-    call->channel = read_count(reading, "channel", true);
-    read_text(reading, "class", true, call->class_name, sizeof call->class_name);
+    call->channel = reading_count(reading, "channel", true);
+    reading_text(reading, "class", true, call->class_name, sizeof call->class_name);
     call->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
     call->form = (enum call_form)read_word(reading, "form", CALL_TRAIN + 1, form_word);
     call->start_ns = read_time(reading, "start_s");
     call->end_ns = read_time(reading, "end_s");
-    call->low_hz = read_number(reading, "low_hz", true, NAN);
-    call->high_hz = read_number(reading, "high_hz", true, NAN);
-    call->n_pulses = read_count(reading, "n_pulses", true);
-    call->interval_s = read_number(reading, "interval_s", true, NAN);
-    call->snr_db = read_number(reading, "snr_db", true, NAN);
-    call->level_db = read_number(reading, "level_db", true, NAN);
-    call->relative = read_bool(reading, "relative", true);
-    call->bearing_deg = read_number(reading, "bearing_deg", true, NAN);
-    call->mirror_deg = read_number(reading, "mirror_deg", true, NAN);
+    call->low_hz = reading_number(reading, "low_hz", true, NAN);
+    call->high_hz = reading_number(reading, "high_hz", true, NAN);
+    call->n_pulses = reading_count(reading, "n_pulses", true);
+    call->interval_s = reading_number(reading, "interval_s", true, NAN);
+    call->snr_db = reading_number(reading, "snr_db", true, NAN);
+    call->level_db = reading_number(reading, "level_db", true, NAN);
+    call->relative = reading_bool(reading, "relative", true);
+    call->bearing_deg = reading_number(reading, "bearing_deg", true, NAN);
+    call->mirror_deg = reading_number(reading, "mirror_deg", true, NAN);
     call->bearing_from = (enum bearing_from)read_word(reading, "bearing_from", BEARING_AHEAD + 1, from_word);
-    call->certainty = read_number(reading, "certainty", true, NAN);
-    call->evidence = read_number(reading, "evidence", true, NAN);
+    call->certainty = reading_number(reading, "certainty", true, NAN);
+    call->evidence = reading_number(reading, "evidence", true, NAN);
 }
 
 static void read_note(struct reading *reading, struct note *note)
@@ -206,26 +215,26 @@ static void read_note(struct reading *reading, struct note *note)
     note->kind = (enum note_kind)read_word(reading, "note", NOTE_KIND_COUNT, note_word);
     note->occurred_ns = read_time(reading, "occurred_s");
     note->known_ns = read_time(reading, "known_s");
-    read_text(reading, "person", false, note->person, sizeof note->person);
-    read_text(reading, "watch", false, note->watch, sizeof note->watch);
-    read_text(reading, "station", false, note->station, sizeof note->station);
-    read_text(reading, "species", false, note->species, sizeof note->species);
-    read_text(reading, "verdict", false, note->verdict, sizeof note->verdict);
-    read_text(reading, "answer", false, note->answer, sizeof note->answer);
-    read_text(reading, "advice", false, note->advice, sizeof note->advice);
-    read_text(reading, "job", false, note->job, sizeof note->job);
-    read_text(reading, "source_state", false, note->source_state, sizeof note->source_state);
-    read_text(reading, "text", false, note->text, sizeof note->text);
+    reading_text(reading, "person", false, note->person, sizeof note->person);
+    reading_text(reading, "watch", false, note->watch, sizeof note->watch);
+    reading_text(reading, "station", false, note->station, sizeof note->station);
+    reading_text(reading, "species", false, note->species, sizeof note->species);
+    reading_text(reading, "verdict", false, note->verdict, sizeof note->verdict);
+    reading_text(reading, "answer", false, note->answer, sizeof note->answer);
+    reading_text(reading, "advice", false, note->advice, sizeof note->advice);
+    reading_text(reading, "job", false, note->job, sizeof note->job);
+    reading_text(reading, "source_state", false, note->source_state, sizeof note->source_state);
+    reading_text(reading, "text", false, note->text, sizeof note->text);
     if (json_object_get(reading->root, "group"))
         note->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
-    note->contact = read_count(reading, "contact", false);
-    note->number = read_number(reading, "number", false, NAN);
-    note->distance_m = read_number(reading, "distance_m", false, NAN);
-    note->bearing_deg = read_number(reading, "bearing_deg", false, NAN);
-    note->sea_state = read_number(reading, "sea_state", false, NAN);
-    note->visibility_m = read_number(reading, "visibility_m", false, NAN);
-    note->calf = read_bool(reading, "calf", false);
-    note->leaving = read_bool(reading, "leaving", false);
+    note->contact = reading_count(reading, "contact", false);
+    note->number = reading_number(reading, "number", false, NAN);
+    note->distance_m = reading_number(reading, "distance_m", false, NAN);
+    note->bearing_deg = reading_number(reading, "bearing_deg", false, NAN);
+    note->sea_state = reading_number(reading, "sea_state", false, NAN);
+    note->visibility_m = reading_number(reading, "visibility_m", false, NAN);
+    note->calf = reading_bool(reading, "calf", false);
+    note->leaving = reading_bool(reading, "leaving", false);
 }
 
 /* Decimal digits up to `end`, at least one. */
@@ -243,13 +252,13 @@ static bool read_digits(const char **text, char end, uint64_t max, uint64_t *out
     return true;
 }
 
-/* "run.stream.kind.counter" of the expected kind. */
-static void read_id(struct reading *reading, const char *kind, struct event *event)
+void reading_id(struct reading *reading, const char *kind, uint32_t *out_run, uint32_t *out_stream,
+                uint64_t *out_counter)
 {
     char id[FLOW_ID_SIZE];
-    read_text(reading, "id", true, id, sizeof id);
+    reading_text(reading, "id", true, id, sizeof id);
     const char *at = id;
-    uint64_t run = 0, stream = 0, counter = 0;
+    uint64_t run = 0, stream = 0;
     size_t length = strlen(kind);
     if (!read_digits(&at, '.', UINT32_MAX, &run) || !read_digits(&at, '.', UINT32_MAX, &stream) ||
         strncmp(at, kind, length) != 0 || at[length] != '.') {
@@ -257,11 +266,10 @@ static void read_id(struct reading *reading, const char *kind, struct event *eve
         return;
     }
     at += length + 1;
-    if (!read_digits(&at, '\0', UINT64_MAX, &counter))
+    if (!read_digits(&at, '\0', UINT64_MAX, out_counter))
         reading->good = false;
-    event->run = (uint32_t)run;
-    event->stream = (uint32_t)stream;
-    event->counter = counter;
+    *out_run = (uint32_t)run;
+    *out_stream = (uint32_t)stream;
 }
 
 static bool input_kind(const char *kind, enum event_kind *out)
@@ -303,15 +311,14 @@ enum status entry_event(const char *kind, const char *body, int64_t watch_ns, st
     struct event event = {.known_ns = watch_ns};
     if (!input_kind(kind, &event.kind))
         return STATUS_NOT_FOUND;
-    json_error_t error;
-    struct reading reading = {.root = json_loads(body, JSON_REJECT_DUPLICATES, &error), .good = true};
-    if (!reading.root)
-        return json_error_code(&error) == json_error_out_of_memory ? STATUS_NO_MEMORY : STATUS_BAD_FORMAT;
-    read_id(&reading, kind, &event);
+    struct reading reading;
+    enum status status = reading_begin(body, &reading);
+    if (status != STATUS_OK)
+        return status;
+    reading_id(&reading, kind, &event.run, &event.stream, &event.counter);
     read_event(&reading, &event);
-    json_decref(reading.root);
-    if (!reading.good)
-        return STATUS_BAD_FORMAT;
-    *out = event;
-    return STATUS_OK;
+    status = reading_end(&reading);
+    if (status == STATUS_OK)
+        *out = event;
+    return status;
 }

@@ -1,47 +1,14 @@
 /* What the source's sound adds up to; see tally.h. */
 #include "rule/tally.h"
 #include "base/time.h"
-#include "level/quieting.h"
 #include "rule/tally_fill.h"
-#include "rule/tally_limits.h"
-#include "rule/tally_quieting.h"
-#include "rule/tally_warning.h"
+#include "rule/tally_inner.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #define MINUTE_NS (60 * TIME_NS_PER_S)
-#define KEPT_IMPULSES 4096 /* of the job, for the median: more than an hour of blows */
-
-/* One stream's sums. */
-struct sums {
-    struct exposure *exposure;
-    uint32_t channel; /* whose impulses they are; 0 before the first */
-    uint32_t n_impulses;
-    float sel_db[KEPT_IMPULSES]; /* of the job, a ring */
-    double peak_db;
-    bool changed;
-    uint32_t n_clipped, n_overlapped, n_weak;           /* of them */
-    uint32_t n_other, n_unknown, n_relative, n_refused; /* of the job, not among them */
-    struct tally_limits limits;
-    struct tally_warnings warnings;
-    struct quieting quieting; /* of the job */
-    bool said_falling;
-    enum zone_grade said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */
-    uint64_t n_findings;                /* said in this run */
-};
-
-struct tally {
-    struct tally_setup setup;
-    struct sums *sums; /* [n_streams] */
-    struct source_sea sea;
-    char job[IMPULSE_JOB_SIZE];
-    bool quieting_on;
-    uint32_t run;
-    uint64_t n_exposures, n_sources; /* said in this run */
-    int64_t said_minute;
-};
 
 static struct source_law law_of(const struct tally_setup *setup, double low_hz, double high_hz)
 {
@@ -101,88 +68,6 @@ void tally_destroy(struct tally *tally)
     free(tally);
 }
 
-static double range_of(const struct tally *tally, uint32_t stream, uint32_t channel)
-{
-    return tally->setup.range_m[stream - 1][channel - 1];
-}
-
-/* Whether an impulse belongs into the sums; counts those that do not. Of ours that is said, too. */
-static bool is_summed(struct sums *sums, const struct impulse *impulse)
-{
-    bool ours = impulse->whose == IMPULSE_OURS;
-    sums->n_other += impulse->whose == IMPULSE_OTHERS;
-    sums->n_unknown += impulse->whose == IMPULSE_UNKNOWN;
-    sums->n_refused += ours && impulse->refused;
-    sums->n_relative += ours && impulse->relative && !impulse->refused;
-    if (!ours || (!impulse->refused && !impulse->relative))
-        return ours;
-    if (sums->channel == 0)
-        sums->channel = impulse->channel;
-    sums->changed = true;
-    return false;
-}
-
-static void take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
-{
-    struct sums *sums = &tally->sums[stream - 1];
-    struct exposure_sound sound;
-    if (!is_summed(sums, impulse))
-        return;
-    exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
-                        range_of(tally, stream, impulse->channel), &sound);
-    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
-        return;
-    sums->channel = impulse->channel;
-    sums->sel_db[sums->n_impulses++ % KEPT_IMPULSES] = (float)impulse->sel_db;
-    sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
-    sums->n_clipped += impulse->clipped;
-    sums->n_overlapped += impulse->overlapped;
-    sums->n_weak += impulse->weak;
-    sums->changed = true;
-    const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
-                                    .range_m = range_of(tally, stream, impulse->channel),
-                                    .loss_n_db = tally->setup.loss_n_db,
-                                    .loss_n_spread_db = tally->setup.loss_n_spread_db,
-                                    .level_spread_db = tally->setup.level_spread_db,
-                                    .scatter_db = tally->setup.scatter_db};
-    tally_limits_push(&sums->limits, impulse, &move);
-    tally_warnings_push(&sums->warnings, impulse, &move);
-    struct quieting_impulse quieted = {
-        .on = tally->quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
-    memcpy(quieted.band_db, impulse->band_sel_db, sizeof quieted.band_db);
-    (void)quieting_push(&sums->quieting, &quieted); /* a level that is not finite says nothing of it */
-}
-
-static void take_level(struct tally *tally, uint32_t stream, const struct level *level)
-{
-    struct sums *sums = &tally->sums[stream - 1];
-    struct exposure_sound sound;
-    if (tally->setup.sound != SOUND_CONTINUOUS || level->relative ||
-        (sums->channel && sums->channel != level->channel))
-        return;
-    exposure_of_level(level, range_of(tally, stream, level->channel), &sound);
-    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
-        return;
-    sums->channel = level->channel;
-    sums->changed = true;
-}
-
-static void begin_job(struct tally *tally, const char *job)
-{
-    snprintf(tally->job, sizeof tally->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
-    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
-        struct sums *sums = &tally->sums[i];
-        exposure_begin_job(sums->exposure);
-        sums->n_impulses = sums->n_clipped = sums->n_overlapped = sums->n_weak = 0;
-        sums->n_other = sums->n_unknown = sums->n_relative = sums->n_refused = 0;
-        sums->peak_db = -INFINITY;
-        tally_limits_begin_job(&sums->limits);
-        quieting_reset(&sums->quieting);
-        sums->said_falling = false;
-        memset(sums->said, 0, sizeof sums->said);
-    }
-}
-
 static double finite_or_nan(double x)
 {
     return isfinite(x) ? x : NAN;
@@ -196,12 +81,15 @@ static void fill_place(const struct tally *tally, uint32_t i, uint32_t *stream, 
 }
 
 static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
-                        const struct finding_outcome *finding, const struct outcome_sink *sink)
+                        const struct finding_outcome *finding, struct tally_said *said,
+                        const struct outcome_sink *sink)
 {
     struct outcome outcome = {
         .kind = OUTCOME_FINDING, .run = tally->run, .stream = i + 1, .watch_ns = watch_ns};
     outcome.counter = ++tally->sums[i].n_findings;
     outcome.as.finding = *finding;
+    said->grade = zone_grade_from_text(finding->grade);
+    flow_id(tally->run, i + 1, "finding", outcome.counter, said->id);
     sink->take(sink->context, &outcome);
 }
 
@@ -217,11 +105,12 @@ static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct
                                            .distance_m = exposure->distance_m,
                                            .low_m = exposure->distance_low_m,
                                            .role = tally->setup.role[i][sums->channel - 1],
-                                           .range_m = range_of(tally, i + 1, sums->channel),
+                                           .range_m = tally_range_m(tally, i + 1, sums->channel),
                                            .level_db = exposure->level_db,
                                            .threshold_db = exposure->value_db};
-    if (tally_zone_finding(&tally->setup.criteria->items[c], &distance, tally->job, &sums->said[c], &finding))
-        say_finding(tally, i, watch_ns, &finding, sink);
+    if (tally_zone_finding(&tally->setup.criteria->items[c], &distance, tally->job, sums->said[c].grade,
+                           &finding))
+        say_finding(tally, i, watch_ns, &finding, &sums->said[c], sink);
 }
 
 static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
@@ -238,8 +127,9 @@ static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, con
         check_zone(tally, i, c, exposure, watch_ns, sink);
     }
     struct finding_outcome finding;
-    while (tally_limits_next(&tally->sums[i].limits, tally->setup.criteria, tally->job, &finding))
-        say_finding(tally, i, watch_ns, &finding, sink);
+    struct tally_said *said;
+    while ((said = tally_limits_next(&tally->sums[i].limits, tally->setup.criteria, tally->job, &finding)))
+        say_finding(tally, i, watch_ns, &finding, said, sink);
 }
 
 static int by_level(const void *a, const void *b)
@@ -250,8 +140,8 @@ static int by_level(const void *a, const void *b)
 
 static double median_sel_db(const struct sums *sums)
 {
-    float sorted[KEPT_IMPULSES];
-    uint32_t n = sums->n_impulses < KEPT_IMPULSES ? sums->n_impulses : KEPT_IMPULSES;
+    float sorted[TALLY_KEPT_IMPULSES];
+    uint32_t n = sums->n_impulses < TALLY_KEPT_IMPULSES ? sums->n_impulses : TALLY_KEPT_IMPULSES;
     if (n == 0)
         return NAN;
     memcpy(sorted, sums->sel_db, n * sizeof sorted[0]);
@@ -298,10 +188,9 @@ static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, co
 {
     struct sums *sums = &tally->sums[i];
     struct finding_outcome finding;
-    if (sums->said_falling || !tally_quieting_finding(&sums->quieting, tally->job, &finding))
+    if (sums->falling.grade != ZONE_NOTHING || !tally_quieting_finding(&sums->quieting, tally->job, &finding))
         return;
-    sums->said_falling = true;
-    say_finding(tally, i, watch_ns, &finding, sink);
+    say_finding(tally, i, watch_ns, &finding, &sums->falling, sink);
 }
 
 static void fill_counts(const struct sums *sums, struct source_outcome *out)
@@ -325,7 +214,7 @@ static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const 
         return;
     fill_place(tally, i, &out->stream, &out->channel, out->job);
     fill_counts(sums, out);
-    out->range_m = range_of(tally, i + 1, sums->channel);
+    out->range_m = tally_range_m(tally, i + 1, sums->channel);
     out->sel_db = median_sel_db(sums);
     out->peak_db = finite_or_nan(sums->peak_db);
     fill_numbers(tally, out->sel_db, out->range_m, out);
@@ -339,7 +228,7 @@ static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const 
 static void say_all(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)
 {
     for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
-        if (!tally->sums[i].changed)
+        if (!tally->sums[i].changed || tally->silent)
             continue;
         say_source(tally, i, watch_ns, sink);
         say_exposures(tally, i, watch_ns, sink);
@@ -357,14 +246,15 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         for (uint32_t i = 0; i < tally->setup.n_streams; i++)
             tally->sums[i].n_findings = 0;
     } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
-        take_impulse(tally, event->stream, &event->as.impulse);
+        tally_take_impulse(tally, event->stream, &event->as.impulse);
     else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
-        take_level(tally, event->stream, &event->as.level);
+        tally_take_level(tally, event->stream, &event->as.level);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
         tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {
         say_all(tally, outcome->watch_ns, sink);
-        begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "");
+        tally_begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "",
+                        outcome->watch_ns);
     }
 }
 

@@ -46,4 +46,12 @@ enum status tally_take(struct tally *tally, const struct outcome *outcome, const
 /* The run has ended: what was added since the last minute is said. */
 enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink);
 
+/* Rebuilding from a ledger. While it is silent it sums and says nothing, and what counts as said is what
+ * tally_set_said tells: a `finding` of its own that the ledger holds, in its place among what is taken.
+ * Continuous sound also needs the seconds of the `level` entries, as events: they may come a minute late,
+ * since each belongs to a job by its own time. */
+void tally_set_silent(struct tally *tally, bool silent);
+void tally_set_said(struct tally *tally, const struct outcome *finding);
+bool tally_wants_levels(const struct tally *tally);
+
 #endif

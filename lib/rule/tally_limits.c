@@ -5,6 +5,9 @@
 #include <stdio.h>
 #include <string.h>
 
+#define LIMIT_PASSED "limit passed"
+#define ZONE_TOO_SMALL "zone too small"
+
 void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria)
 {
     memset(limits, 0, sizeof *limits);
@@ -20,7 +23,7 @@ void tally_limits_begin_job(struct tally_limits *limits)
 {
     for (uint32_t i = 0; i < limits->n; i++) {
         limits->limits[i].tally = (struct zone_tally){0};
-        limits->limits[i].said = ZONE_NOTHING;
+        limits->limits[i].said = (struct tally_said){ZONE_NOTHING, ""};
     }
 }
 
@@ -77,37 +80,56 @@ static void fill(const struct criterion *criterion, const char *code, enum zone_
     snprintf(out->grade, sizeof out->grade, "%s", zone_grade_text(grade));
 }
 
-bool tally_limits_next(struct tally_limits *limits, const struct criteria *criteria, const char *job,
-                       struct finding_outcome *out)
+static bool is_finding(const struct criterion *criterion, const char *code,
+                       const struct finding_outcome *finding)
+{
+    struct finding_outcome wanted;
+    fill(criterion, code, ZONE_NOTHING, "", &wanted);
+    return strcmp(finding->code, wanted.code) == 0 && strcmp(finding->clause, wanted.clause) == 0;
+}
+
+void tally_limits_set_said(struct tally_limits *limits, const struct criteria *criteria,
+                           const struct finding_outcome *finding, const struct tally_said *said)
+{
+    for (uint32_t i = 0; i < limits->n; i++)
+        if (is_finding(&criteria->items[limits->limits[i].criterion], LIMIT_PASSED, finding))
+            limits->limits[i].said = *said;
+}
+
+bool tally_is_zone_finding(const struct criterion *criterion, const struct finding_outcome *finding)
+{
+    return is_finding(criterion, ZONE_TOO_SMALL, finding);
+}
+
+struct tally_said *tally_limits_next(struct tally_limits *limits, const struct criteria *criteria,
+                                     const char *job, struct finding_outcome *out)
 {
     for (uint32_t i = 0; i < limits->n; i++) {
         struct tally_limit *one = &limits->limits[i];
         struct zone_verdict verdict = zone_check_limit(&one->tally, &one->limit);
-        if (verdict.grade < ZONE_INDICATIVE || verdict.grade <= one->said)
+        if (verdict.grade < ZONE_INDICATIVE || verdict.grade <= one->said.grade)
             continue;
         const struct criterion *criterion = &criteria->items[one->criterion];
-        one->said = verdict.grade;
-        fill(criterion, "limit passed", verdict.grade, job, out);
+        fill(criterion, LIMIT_PASSED, verdict.grade, job, out);
         snprintf(out->detail, sizeof out->detail,
                  "%llu of %llu impulses over %.1f dB (%s, re %s) at %.0f m, the highest %.1f dB%s",
                  (unsigned long long)verdict.n_over, (unsigned long long)verdict.n, one->limit.limit_db,
                  criterion_metric_text(one->limit.metric), criterion_reference(one->limit.metric),
                  one->limit.range_m, verdict.highest_db,
                  criterion->disputed ? "; sources disagree on the metric" : "");
-        return true;
+        return &one->said;
     }
-    return false;
+    return NULL;
 }
 
 bool tally_zone_finding(const struct criterion *criterion, const struct zone_distance *distance,
-                        const char *job, enum zone_grade *said, struct finding_outcome *out)
+                        const char *job, enum zone_grade said, struct finding_outcome *out)
 {
     enum zone_grade grade = zone_check_distance(distance);
     bool hurts = criterion->effect == EFFECT_INJURY || criterion->effect == EFFECT_MORTALITY;
-    if (!hurts || grade < ZONE_INDICATIVE || grade <= *said)
+    if (!hurts || grade < ZONE_INDICATIVE || grade <= said)
         return false;
-    *said = grade;
-    fill(criterion, "zone too small", grade, job, out);
+    fill(criterion, ZONE_TOO_SMALL, grade, job, out);
     char met[NOTE_NAME_SIZE], least[NOTE_NAME_SIZE];
     tally_distance_text(distance->distance_m, NAN, NAN, met);
     tally_distance_text(distance->low_m, NAN, NAN, least);

@@ -10,11 +10,17 @@
 
 #define TALLY_MAX_LIMITS 16
 
+/* The strongest finding of the job so far about one thing. */
+struct tally_said {
+    enum zone_grade grade;
+    char id[FLOW_ID_SIZE]; /* the newest finding's */
+};
+
 struct tally_limit {
     uint32_t criterion; /* its index */
     struct zone_limit limit;
     struct zone_tally tally;
-    enum zone_grade said; /* the strongest finding of the job so far */
+    struct tally_said said;
 };
 
 /* Plain data. */
@@ -48,14 +54,18 @@ bool tally_move_level(const struct impulse *impulse, const struct tally_move *mo
 void tally_limits_push(struct tally_limits *limits, const struct impulse *impulse,
                        const struct tally_move *move);
 
-/* The next limit whose finding is stronger than what was said of it in this job: true, and the finding is
- * filled but for its causes; false when there is none. */
-bool tally_limits_next(struct tally_limits *limits, const struct criteria *criteria, const char *job,
-                       struct finding_outcome *out);
+/* The next limit whose finding is stronger than what was said of it in this job: what was said of it, for the
+ * caller to set, and the finding is filled but for its causes; NULL when there is none. */
+struct tally_said *tally_limits_next(struct tally_limits *limits, const struct criteria *criteria,
+                                     const char *job, struct finding_outcome *out);
+/* A finding that was said of one of the limits; others change nothing. */
+void tally_limits_set_said(struct tally_limits *limits, const struct criteria *criteria,
+                           const struct finding_outcome *finding, const struct tally_said *said);
 
-/* The same for a criterion of injury that reaches beyond the zone; `said` holds what was said of it in this
+/* The same for a criterion of injury that reaches beyond the zone; `said` is what was said of it in this
  * job. */
 bool tally_zone_finding(const struct criterion *criterion, const struct zone_distance *distance,
-                        const char *job, enum zone_grade *said, struct finding_outcome *out);
+                        const char *job, enum zone_grade said, struct finding_outcome *out);
+bool tally_is_zone_finding(const struct criterion *criterion, const struct finding_outcome *finding);
 
 #endif

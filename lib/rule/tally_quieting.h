@@ -7,6 +7,8 @@
 #include "level/criterion.h"
 #include "level/quieting.h"
 
+#define TALLY_QUIETING_FALLS "quieting falls"
+
 /* Insertion loss, by decidecade and as each weighting among the criteria hears it; NAN and counts of 0 where
  * it is not known. Bands that the measure takes below the background take nothing off the weighted sums. */
 void tally_fill_quieting(const struct quieting *quieting, const struct criteria *criteria,

@@ -1,0 +1,119 @@
+/* What the tally sums, and what counts as said; see tally_inner.h. */
+#include "rule/tally_inner.h"
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channel)
+{
+    return tally->setup.range_m[stream - 1][channel - 1];
+}
+
+/* Whether an impulse belongs into the sums; counts those that do not. Of ours that is said, too. */
+static bool is_summed(struct sums *sums, const struct impulse *impulse)
+{
+    bool ours = impulse->whose == IMPULSE_OURS;
+    sums->n_other += impulse->whose == IMPULSE_OTHERS;
+    sums->n_unknown += impulse->whose == IMPULSE_UNKNOWN;
+    sums->n_refused += ours && impulse->refused;
+    sums->n_relative += ours && impulse->relative && !impulse->refused;
+    if (!ours || (!impulse->refused && !impulse->relative))
+        return ours;
+    if (sums->channel == 0)
+        sums->channel = impulse->channel;
+    sums->changed = true;
+    return false;
+}
+
+void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
+{
+    struct sums *sums = &tally->sums[stream - 1];
+    struct exposure_sound sound;
+    if (tally->setup.sound != SOUND_IMPULSIVE)
+        return; /* in the levels of its seconds it is counted already */
+    if (!is_summed(sums, impulse))
+        return;
+    exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
+                        tally_range_m(tally, stream, impulse->channel), &sound);
+    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
+        return;
+    sums->channel = impulse->channel;
+    sums->sel_db[sums->n_impulses++ % TALLY_KEPT_IMPULSES] = (float)impulse->sel_db;
+    sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
+    sums->n_clipped += impulse->clipped;
+    sums->n_overlapped += impulse->overlapped;
+    sums->n_weak += impulse->weak;
+    sums->changed = true;
+    const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
+                                    .range_m = tally_range_m(tally, stream, impulse->channel),
+                                    .loss_n_db = tally->setup.loss_n_db,
+                                    .loss_n_spread_db = tally->setup.loss_n_spread_db,
+                                    .level_spread_db = tally->setup.level_spread_db,
+                                    .scatter_db = tally->setup.scatter_db};
+    tally_limits_push(&sums->limits, impulse, &move);
+    tally_warnings_push(&sums->warnings, impulse, &move);
+    struct quieting_impulse quieted = {
+        .on = tally->quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
+    memcpy(quieted.band_db, impulse->band_sel_db, sizeof quieted.band_db);
+    (void)quieting_push(&sums->quieting, &quieted); /* a level that is not finite says nothing of it */
+}
+
+void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level)
+{
+    struct sums *sums = &tally->sums[stream - 1];
+    struct exposure_sound sound;
+    if (tally->setup.sound != SOUND_CONTINUOUS || level->relative ||
+        (sums->channel && sums->channel != level->channel))
+        return;
+    exposure_of_level(level, tally_range_m(tally, stream, level->channel), &sound);
+    /* By its own time: seconds that come in again from a ledger come a minute late. */
+    sound.before_job = level->start_ns < tally->job_ns;
+    if (exposure_push(sums->exposure, &sound) != STATUS_OK)
+        return;
+    sums->channel = level->channel;
+    sums->changed = true;
+}
+
+void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
+{
+    tally->job_ns = watch_ns;
+    snprintf(tally->job, sizeof tally->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
+    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
+        struct sums *sums = &tally->sums[i];
+        exposure_begin_job(sums->exposure);
+        sums->n_impulses = sums->n_clipped = sums->n_overlapped = sums->n_weak = 0;
+        sums->n_other = sums->n_unknown = sums->n_relative = sums->n_refused = 0;
+        sums->peak_db = -INFINITY;
+        tally_limits_begin_job(&sums->limits);
+        quieting_reset(&sums->quieting);
+        sums->falling = (struct tally_said){ZONE_NOTHING, ""};
+        memset(sums->said, 0, sizeof sums->said);
+    }
+}
+
+bool tally_wants_levels(const struct tally *tally)
+{
+    return tally->setup.sound == SOUND_CONTINUOUS;
+}
+
+void tally_set_silent(struct tally *tally, bool silent)
+{
+    tally->silent = silent;
+}
+
+void tally_set_said(struct tally *tally, const struct outcome *outcome)
+{
+    const struct finding_outcome *finding = &outcome->as.finding;
+    if (outcome->stream < 1 || outcome->stream > tally->setup.n_streams ||
+        strcmp(finding->job, tally->job) != 0)
+        return;
+    struct sums *sums = &tally->sums[outcome->stream - 1];
+    struct tally_said said = {zone_grade_from_text(finding->grade), ""};
+    flow_id(outcome->run, outcome->stream, "finding", outcome->counter, said.id);
+    if (strcmp(finding->code, TALLY_QUIETING_FALLS) == 0)
+        sums->falling = said;
+    tally_limits_set_said(&sums->limits, tally->setup.criteria, finding, &said);
+    for (uint32_t c = 0; c < tally->setup.criteria->n; c++)
+        if (tally_is_zone_finding(&tally->setup.criteria->items[c], finding))
+            sums->said[c] = said;
+}
