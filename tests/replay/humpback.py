@@ -61,6 +61,9 @@ def song(place):
     figure("humpback song: %d of %d intervals matched, %d rows in the view call" % (found, len(LABELS), len(calls)))
     check("at least 12 of the 17 intervals are found", found >= 12)
     check("at most 40 calls are given", len(calls) <= 40)
+    impulses = ask(ledger, "SELECT time_s, t90_s, rms90_db, whose FROM impulse")
+    figure("song taken for an impulse: %s" % impulses)
+    check("at most one unit of song passes for an impulse, and for nobody's", len(impulses) <= 1 and all(row[3] == "unknown" for row in impulses), impulses)
     check_contact_and_advice(ledger)
     check("the ledger verifies", verify(ledger).returncode == 0)
 
