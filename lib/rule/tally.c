@@ -193,27 +193,16 @@ static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, co
     say_finding(tally, i, watch_ns, &finding, &sums->falling, sink);
 }
 
-static void fill_counts(const struct sums *sums, struct source_outcome *out)
-{
-    out->n_impulses = sums->n_impulses;
-    out->n_clipped = sums->n_clipped;
-    out->n_overlapped = sums->n_overlapped;
-    out->n_weak = sums->n_weak;
-    out->n_other = sums->n_other;
-    out->n_unknown = sums->n_unknown;
-    out->n_relative = sums->n_relative;
-    out->n_refused = sums->n_refused;
-}
-
 static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
     const struct sums *sums = &tally->sums[i];
     struct outcome outcome = {.kind = OUTCOME_SOURCE, .run = tally->run, .watch_ns = watch_ns};
     struct source_outcome *out = &outcome.as.source;
-    if (sums->n_impulses + sums->n_relative + sums->n_refused == 0)
+    if (sums->n_impulses + sums->counts.n_relative + sums->counts.n_refused == 0)
         return;
     fill_place(tally, i, &out->stream, &out->channel, out->job);
-    fill_counts(sums, out);
+    out->n_impulses = sums->n_impulses;
+    tally_counts_fill(&sums->counts, out);
     out->range_m = tally_range_m(tally, i + 1, sums->channel);
     out->sel_db = median_sel_db(sums);
     out->peak_db = finite_or_nan(sums->peak_db);
@@ -237,6 +226,34 @@ static void say_all(struct tally *tally, int64_t watch_ns, const struct outcome_
     }
 }
 
+/* The first word of an early warning does not wait for the minute. */
+static void check_warning(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    struct sums *sums = &tally->sums[i];
+    char text[FLOW_TEXT_SIZE];
+    enum zone_warning warning = tally_warnings_text(&sums->warnings, tally->setup.criteria, text);
+    if (warning <= sums->warned)
+        return;
+    sums->warned = warning;
+    if (!tally->silent)
+        say_source(tally, i, watch_ns, sink);
+}
+
+/* A soft start begins or ends: an early warning is over with it. */
+static void take_phase(struct tally *tally, enum phase phase, int64_t watch_ns,
+                       const struct outcome_sink *sink)
+{
+    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
+        struct sums *sums = &tally->sums[i];
+        tally_warnings_phase(&sums->warnings, phase, watch_ns);
+        if (phase == PHASE_SOFT_START)
+            continue;
+        if (sums->warned != ZONE_NO_WARNING && !tally->silent)
+            say_source(tally, i, watch_ns, sink);
+        sums->warned = ZONE_NO_WARNING;
+    }
+}
+
 static void take_event(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
 {
     const struct event *event = &outcome->as.event;
@@ -245,9 +262,11 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         tally->n_exposures = tally->n_sources = 0;
         for (uint32_t i = 0; i < tally->setup.n_streams; i++)
             tally->sums[i].n_findings = 0;
-    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 &&
+               event->stream <= tally->setup.n_streams) {
         tally_take_impulse(tally, event->stream, &event->as.impulse);
-    else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+        check_warning(tally, event->stream - 1, outcome->watch_ns, sink);
+    } else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         tally_take_level(tally, event->stream, &event->as.level);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
         tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
@@ -266,8 +285,7 @@ enum status tally_take(struct tally *tally, const struct outcome *outcome, const
         say_all(tally, outcome->watch_ns, sink);
     }
     if (outcome->kind == OUTCOME_PHASE)
-        for (uint32_t i = 0; i < tally->setup.n_streams; i++)
-            tally_warnings_phase(&tally->sums[i].warnings, outcome->as.phase.phase, outcome->watch_ns);
+        take_phase(tally, outcome->as.phase.phase, outcome->watch_ns, sink);
     if (outcome->kind == OUTCOME_EVENT)
         take_event(tally, outcome, sink);
     return STATUS_OK;

@@ -8,6 +8,7 @@
 
 #include "level/quieting.h"
 #include "rule/tally.h"
+#include "rule/tally_counts.h"
 #include "rule/tally_limits.h"
 #include "rule/tally_quieting.h"
 #include "rule/tally_warning.h"
@@ -22,10 +23,10 @@ struct sums {
     float sel_db[TALLY_KEPT_IMPULSES]; /* of the job, a ring */
     double peak_db;
     bool changed;
-    uint32_t n_clipped, n_overlapped, n_weak;           /* of them */
-    uint32_t n_other, n_unknown, n_relative, n_refused; /* of the job, not among them */
+    struct tally_counts counts; /* of the job */
     struct tally_limits limits;
     struct tally_warnings warnings;
+    enum zone_warning warned; /* the strongest that was said in this soft start */
     struct quieting quieting; /* of the job */
     struct tally_said falling;
     struct tally_said said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */

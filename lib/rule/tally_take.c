@@ -9,30 +9,18 @@ double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channe
     return tally->setup.range_m[stream - 1][channel - 1];
 }
 
-/* Whether an impulse belongs into the sums; counts those that do not. Of ours that is said, too. */
-static bool is_summed(struct sums *sums, const struct impulse *impulse)
-{
-    bool ours = impulse->whose == IMPULSE_OURS;
-    sums->n_other += impulse->whose == IMPULSE_OTHERS;
-    sums->n_unknown += impulse->whose == IMPULSE_UNKNOWN;
-    sums->n_refused += ours && impulse->refused;
-    sums->n_relative += ours && impulse->relative && !impulse->refused;
-    if (!ours || (!impulse->refused && !impulse->relative))
-        return ours;
-    if (sums->channel == 0)
-        sums->channel = impulse->channel;
-    sums->changed = true;
-    return false;
-}
-
 void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
 {
     struct sums *sums = &tally->sums[stream - 1];
     struct exposure_sound sound;
     if (tally->setup.sound != SOUND_IMPULSIVE)
         return; /* in the levels of its seconds it is counted already */
-    if (!is_summed(sums, impulse))
+    if (!tally_counts_take(&sums->counts, impulse)) {
+        if (impulse->whose == IMPULSE_OURS && sums->channel == 0)
+            sums->channel = impulse->channel;
+        sums->changed = sums->changed || impulse->whose == IMPULSE_OURS; /* people hear that it is missing */
         return;
+    }
     exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
                         tally_range_m(tally, stream, impulse->channel), &sound);
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)
@@ -40,9 +28,6 @@ void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impul
     sums->channel = impulse->channel;
     sums->sel_db[sums->n_impulses++ % TALLY_KEPT_IMPULSES] = (float)impulse->sel_db;
     sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
-    sums->n_clipped += impulse->clipped;
-    sums->n_overlapped += impulse->overlapped;
-    sums->n_weak += impulse->weak;
     sums->changed = true;
     const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
                                     .range_m = tally_range_m(tally, stream, impulse->channel),
@@ -81,8 +66,8 @@ void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
     for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
         struct sums *sums = &tally->sums[i];
         exposure_begin_job(sums->exposure);
-        sums->n_impulses = sums->n_clipped = sums->n_overlapped = sums->n_weak = 0;
-        sums->n_other = sums->n_unknown = sums->n_relative = sums->n_refused = 0;
+        sums->n_impulses = 0;
+        sums->counts = (struct tally_counts){0};
         sums->peak_db = -INFINITY;
         tally_limits_begin_job(&sums->limits);
         quieting_reset(&sums->quieting);

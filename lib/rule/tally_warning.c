@@ -66,14 +66,14 @@ static enum zone_warning judge(const struct tally_warning *one, double end_s, st
     return zone_warn(&one->trend, end_s, &surely, NULL) == ZONE_WILL_PASS ? ZONE_WILL_PASS : ZONE_MAY_PASS;
 }
 
-void tally_warnings_text(const struct tally_warnings *warnings, const struct criteria *criteria,
-                         char out[FLOW_TEXT_SIZE])
+enum zone_warning tally_warnings_text(const struct tally_warnings *warnings, const struct criteria *criteria,
+                                      char out[FLOW_TEXT_SIZE])
 {
     enum zone_warning strongest = ZONE_NO_WARNING;
     double most_db = 0;
     out[0] = '\0';
     if (warnings->start_ns < 0 || !(warnings->length_s > 0))
-        return;
+        return strongest;
     double end_s = fmax(warnings->length_s, time_to_s(warnings->last_ns - warnings->start_ns));
     for (uint32_t i = 0; i < warnings->n; i++) {
         const struct tally_warning *one = &warnings->items[i];
@@ -94,4 +94,5 @@ void tally_warnings_text(const struct tally_warnings *warnings, const struct cri
                  forecast.high_db + TALLY_BOUND * one->move_spread_db,
                  warning == ZONE_WILL_PASS ? "will pass" : "may pass", one->limit.limit_db);
     }
+    return strongest;
 }

@@ -45,8 +45,8 @@ void tally_warnings_reset(struct tally_warnings *warnings, const struct criteria
 void tally_warnings_phase(struct tally_warnings *warnings, enum phase phase, int64_t watch_ns);
 void tally_warnings_push(struct tally_warnings *warnings, const struct impulse *impulse,
                          const struct tally_move *move);
-/* The strongest warning in words; empty where there is none. */
-void tally_warnings_text(const struct tally_warnings *warnings, const struct criteria *criteria,
-                         char out[FLOW_TEXT_SIZE]);
+/* The strongest warning, and in words; empty where there is none. */
+enum zone_warning tally_warnings_text(const struct tally_warnings *warnings, const struct criteria *criteria,
+                                      char out[FLOW_TEXT_SIZE]);
 
 #endif

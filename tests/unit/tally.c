@@ -451,8 +451,6 @@ static struct course soft_start(double first_db, double last_db, bool phase, uin
     }
     if (phase)
         give_phase(tally, &said, PHASE_FULL_POWER, 1201 * TIME_NS_PER_S);
-    give_blow(tally, &said, 1262 * TIME_NS_PER_S, last_db, IMPULSE_OURS);
-    give_blow(tally, &said, 1322 * TIME_NS_PER_S, last_db, IMPULSE_OURS);
     assert_string_equal(said.source.warning, ""); /* the soft start is over: findings speak */
     tally_destroy(tally);
     return course;
@@ -469,7 +467,7 @@ static void a_soft_start_warns_before_the_limit(void **state)
     memset(&criteria, 0, sizeof criteria);
     assert_int_equal(criteria_load("config/criteria/germany-2008.cfg", &problems, NULL, &criteria),
                      STATUS_OK);
-    for (uint64_t seed = 31; seed < 41; seed++) {
+    for (uint64_t seed = 31; seed < 36; seed++) {
         struct course rising = soft_start(148, 166, true, seed);
         if (seed == 31)
             printf("# figure a soft start from 148 to 166 dB in 1200 s, seed 31: warned at %d s, surely at "
