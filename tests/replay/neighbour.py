@@ -49,7 +49,7 @@ def hear(place, name, seed, hammers):
 
 
 with folder() as place_of_test:
-    for seed in (1, 2):
+    for seed in range(1, 9 if os.environ.get("HUSHWATCH_LENGTH") == "long" else 3):
         alone = hear(place_of_test, "ours alone, seed %d" % seed, seed, [OURS])
         both = hear(place_of_test, "ours and the neighbour's, seed %d" % seed, seed, [OURS, NEIGHBOUR])
         figure("alone %s, source %s; with the neighbour %s, source %s" %
