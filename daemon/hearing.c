@@ -115,6 +115,8 @@ static void take_curve(struct hearing_view *hearing, const struct impulse *impul
 static void take_impulse(struct hearing_view *hearing, const struct outcome *outcome,
                          const struct event *event)
 {
+    if (event->as.impulse.beside)
+        return; /* the same blow once */
     hearing->n_impulses =
         push_front(hearing->impulses, hearing->n_impulses, BOARD_MAX_IMPULSES, sizeof hearing->impulses[0]);
     hearing->impulses[0] = (struct hearing_impulse){.stream = event->stream, .impulse = event->as.impulse};
@@ -139,7 +141,8 @@ static void take_exposure(struct hearing_view *hearing, const struct exposure_ou
 static void take_source(struct hearing_view *hearing, const struct source_outcome *source)
 {
     uint32_t i = 0;
-    while (i < hearing->n_sources && hearing->sources[i].stream != source->stream)
+    while (i < hearing->n_sources &&
+           (hearing->sources[i].stream != source->stream || hearing->sources[i].channel != source->channel))
         i++;
     if (i == BOARD_MAX_SOURCES)
         return;

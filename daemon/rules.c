@@ -1,6 +1,7 @@
 /* What a run judges by; see rules.h. */
 #include "rules.h"
 #include "files.h"
+#include "sea/sound_speed.h"
 #include "settings/catalogue.h"
 #include "settings/permit.h"
 #include <math.h>
@@ -37,6 +38,13 @@ void rules_destroy(struct rules *rules)
     free(rules);
 }
 
+/* In the middle of the water; the latitude hardly matters in shallow water. */
+static double sound_speed_m_s(const struct site *site)
+{
+    const struct source_settings *source = &site->source;
+    return sea_sound_speed_m_s(source->temperature_c, source->salinity, source->depth_m / 2, 45);
+}
+
 enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                const uint32_t *n_channels, struct watch **out)
 {
@@ -47,6 +55,10 @@ enum status rules_create_watch(const struct rules *rules, const struct site *sit
                                 .evidence_decay_s = site->evidence_decay_s,
                                 .sighting_log_spread = site->sighting_log_spread,
                                 .silence_s = site->silence_s};
+    setup.sound_speed_m_s = sound_speed_m_s(site);
+    for (uint32_t i = 0; i < n_streams; i++)
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
+            setup.range_m[i][c] = channel_range_m(&site->streams[i].channels[c]);
     for (uint32_t i = 0; i < n_streams; i++)
         for (uint32_t c = 0; c < n_channels[i]; c++)
             if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
@@ -81,6 +93,7 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
                                   .loss_n_spread_db = site->source.loss_n_spread_db,
                                   .water = absorption_of(site->source.temperature_c, site->source.salinity,
                                                          site->source.depth_m / 2, 8.0),
+                                  .sound_speed_m_s = sound_speed_m_s(site),
                                   .level_spread_db = site->source.level_spread_db,
                                   .scatter_db = site->source.scatter_db,
                                   .zone_edge_m = zone_edge_m(&rules->permit),
@@ -89,8 +102,7 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
             const struct channel_settings *channel = &site->streams[i].channels[c];
             setup->role[i][c] = channel->calibration.role;
-            setup->range_m[i][c] =
-                sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
+            setup->range_m[i][c] = channel_range_m(channel);
         }
     enum status status = tally_create(setup, out_tally);
     free(setup);

@@ -263,8 +263,10 @@ static enum status build(struct stream *stream, uint32_t run, int64_t start_ns)
                                  .catalogue = stream->setup.catalogue};
     if (stream->setup.columns.take)
         setup.columns = (struct column_sink){take_column, stream};
-    for (uint32_t i = 0; i < setup.n_channels; i++)
+    for (uint32_t i = 0; i < setup.n_channels; i++) {
         setup.calibration[i] = stream->setup.settings->channels[i].calibration;
+        setup.range_m[i] = channel_range_m(&stream->setup.settings->channels[i]);
+    }
     stream->map = setup.map;
     enum status status = listen_create(&setup, &stream->listen);
     if (status == STATUS_OK)

@@ -71,7 +71,8 @@ static void count(struct watcher *watcher, const struct outcome *outcome)
     pthread_mutex_lock(&watcher->lock);
     struct watcher_state *state = &watcher->state;
     state->n_calls += outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_CALL;
-    state->n_impulses += outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_IMPULSE;
+    state->n_impulses += outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_IMPULSE &&
+                         !outcome->as.event.as.impulse.beside;
     if (outcome->kind == OUTCOME_CONTACT && outcome->as.contact.contact > state->n_contacts)
         state->n_contacts = outcome->as.contact.contact;
     state->n_advice += outcome->kind == OUTCOME_ADVICE;

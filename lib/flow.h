@@ -214,7 +214,9 @@ struct source_outcome {
     double at_750_m_db, at_750_m_low_db, at_750_m_high_db; /* SEL, with its 90 % interval */
     double back_db, back_low_db, back_high_db; /* energy source level; NAN where it has no meaning */
     char model[NOTE_NAME_SIZE];                /* the loss law */
-    double n_db;
+    double n_db, n_low_db, n_high_db; /* with its 90 % interval: fitted, or as unsure as it was set */
+    bool fitted;                      /* to the job's blows, and not set */
+    double range_low_m, range_high_m; /* of the fit; NAN where it was set */
     double insertion_db, insertion_low_db,
         insertion_high_db; /* broadband, of the quieting measure; NAN where unknown */
     bool quieting_on;

@@ -22,7 +22,7 @@
 #define BOARD_MAX_UNHEARD 40
 #define BOARD_MAX_FAULTS 8
 #define BOARD_MAX_EXPOSURES 64
-#define BOARD_MAX_SOURCES SITE_MAX_STREAMS
+#define BOARD_MAX_SOURCES 32  /* channels that measure impulses */
 #define BOARD_CURVE_STEPS 360 /* an hour */
 #define BOARD_CURVE_STEP_S 10
 #define BOARD_MAX_UNRECORDED 8

@@ -50,6 +50,11 @@ static void source(struct text *text, const struct source_outcome *source)
     json_flag(text, "quieting_on", source->quieting_on);
     json_text(text, "model", source->model);
     json_number(text, "n_db", source->n_db, ROUND_DECIMALS_DB);
+    json_number(text, "n_low_db", source->n_low_db, ROUND_DECIMALS_DB);
+    json_number(text, "n_high_db", source->n_high_db, ROUND_DECIMALS_DB);
+    json_flag(text, "fitted", source->fitted);
+    json_number(text, "range_low_m", source->range_low_m, ROUND_DECIMALS_M);
+    json_number(text, "range_high_m", source->range_high_m, ROUND_DECIMALS_M);
     json_text(text, "reason", source->reason);
     text_append(text, "}");
 }

@@ -37,7 +37,7 @@ enum status handle_open_reading(struct ledger *ledger, char problem[LEDGER_PROBL
 enum status handle_check_identity(const struct ledger *ledger, bool *out_empty,
                                   char problem[LEDGER_PROBLEM_SIZE]);
 int handle_set_up(struct ledger *ledger);
-/* Compares the schema only; STATUS_MISMATCH when a fault was called. */
+/* Compares the schema only; STATUS_MISMATCH when a fault was called. Of an older format one fault says so. */
 enum status handle_check_names(struct ledger *ledger, void (*fault)(void *context, const char *sentence),
                                void *context);
 

@@ -196,7 +196,16 @@ static enum status compare_object(void *context, int n, const char *const *colum
 enum status handle_check_names(struct ledger *ledger, void (*fault)(void *context, const char *sentence),
                                void *context)
 {
-    struct schema_check check = {fault, context, calloc(views_count, sizeof(bool)), false};
+    struct schema_check check = {.fault = fault, .context = context};
+    int64_t format;
+    if (handle_integer(ledger->db, "PRAGMA user_version", &format) == SQLITE_OK && format < VIEWS_FORMAT) {
+        say(&check,
+            "was written by another version (format %lld, this one makes %d): its table and views cannot be "
+            "compared here",
+            (long long)format, VIEWS_FORMAT);
+        return STATUS_MISMATCH;
+    }
+    check.seen = calloc(views_count, sizeof(bool));
     if (!check.seen)
         return STATUS_NO_MEMORY;
     enum status status =

@@ -279,6 +279,11 @@ enum status site_load(const char *path, struct problems *problems, struct site *
     return problems->count == before ? STATUS_OK : STATUS_BAD_FORMAT;
 }
 
+double channel_range_m(const struct channel_settings *channel)
+{
+    return sqrt(channel->x_m * channel->x_m + channel->y_m * channel->y_m + channel->z_m * channel->z_m);
+}
+
 void site_destroy(struct site *site)
 {
     if (site)

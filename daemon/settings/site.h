@@ -26,6 +26,9 @@ struct channel_settings {
         z_m; /* from the source's reference point: ahead, to starboard, down; NAN where unknown */
 };
 
+/* Slant range of the channel's place from the source's reference point, m; NAN where unknown. */
+double channel_range_m(const struct channel_settings *channel);
+
 struct stream_settings {
     char name[64];
     char input[32];            /* a name of the input table: "device", "recording", "pcm", "scene" */

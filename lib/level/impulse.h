@@ -29,6 +29,8 @@ struct impulse {
     bool clipped;    /* measures are lower bounds */
     bool overlapped; /* another impulse began inside its window */
     bool weak;       /* energy less than 10 dB above the background in the window */
+    bool beside; /* heard beside the channel of the stream that counts (listen/measuring.h): one blow counts
+                    once */
     enum impulse_whose whose;   /* set by the watch */
     char job[IMPULSE_JOB_SIZE]; /* set by the watch; empty where no job is open */
 };

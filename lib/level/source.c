@@ -57,6 +57,22 @@ static double decades_outside(const struct fitted *fitted, double from_m, double
     return high - low - fmax(inside, 0.0);
 }
 
+/* The spread of N times the decades; of a fit more for those outside its ranges. */
+static double spread_between_db(const struct source_law *law, double from_m, double to_m)
+{
+    double spread = law->n_spread_db * fabs(log10(to_m / from_m));
+    if (law->is_fitted)
+        spread = hypot(spread, SOURCE_ASSUMED_N_SPREAD_DB * decades_outside(&law->fitted, from_m, to_m));
+    return spread;
+}
+
+void source_law_between(const struct source_law *law, double from_m, double to_m, double *out_db,
+                        double *out_spread_db)
+{
+    *out_db = loss_between_db(&law->loss, from_m, to_m);
+    *out_spread_db = spread_between_db(law, from_m, to_m);
+}
+
 void source_sea_between(void *context, double frequency_hz, double from_m, double to_m, double *out_db,
                         double *out_spread_db)
 {
@@ -68,12 +84,9 @@ void source_sea_between(void *context, double frequency_hz, double from_m, doubl
     struct loss loss = law ? law->loss : (struct loss){.law = LOSS_POWER, .n_db = sea->n_db};
     if (sea->has_water)
         loss.absorption_db_m = absorption_db_m(&sea->water, frequency_hz);
-    double decades = fabs(log10(to_m / from_m));
-    double spread = (law ? law->n_spread_db : SOURCE_ASSUMED_N_SPREAD_DB) * decades;
-    if (law && law->is_fitted)
-        spread = hypot(spread, SOURCE_ASSUMED_N_SPREAD_DB * decades_outside(&law->fitted, from_m, to_m));
     *out_db = loss_between_db(&loss, from_m, to_m);
-    *out_spread_db = spread;
+    *out_spread_db =
+        law ? spread_between_db(law, from_m, to_m) : SOURCE_ASSUMED_N_SPREAD_DB * fabs(log10(to_m / from_m));
 }
 
 /* Why nothing but the received level can be given; NULL when more can. */
@@ -122,7 +135,7 @@ static struct source_number work_back(const struct source_measurement *m, const 
     double far_m = shape->aperture_m * shape->aperture_m * shape->main_hz / m->sound_speed_m_s;
     if (shape->form == SOURCE_ARRAY && !(m->range_m >= far_m))
         return none("the hydrophone is in the array's near field");
-    double spread = hypot(hypot(m->spread_db, law->scatter_db), law->n_spread_db * log10(m->range_m));
+    double spread = hypot(hypot(m->spread_db, law->scatter_db), spread_between_db(law, 1.0, m->range_m));
     return number(m->level_db + loss_db(&law->loss, m->range_m), half_width(spread));
 }
 

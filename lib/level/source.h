@@ -92,6 +92,10 @@ struct source_sea {
     double n_db;             /* where no law covers: this N, with SOURCE_ASSUMED_N_SPREAD_DB */
 };
 
+/* What a level falls by from one range to another under a law, dB, and the standard deviation of that. */
+void source_law_between(const struct source_law *law, double from_m, double to_m, double *out_db,
+                        double *out_spread_db);
+
 /* What a band's level falls by from one range to another, dB, and the standard deviation of that: spread of N
  * times the decades between; of a fitted law SOURCE_ASSUMED_N_SPREAD_DB more, in squares, for the decades
  * that lie outside the ranges of the fit, where the slope is as unknown as one never fitted. Grows with to_m.

@@ -7,6 +7,7 @@
 #include "base/units.h"
 #include "listen/ear.h"
 #include "listen/joiner.h"
+#include "listen/measuring.h"
 #include "listen/strips.h"
 #include <math.h>
 #include <stdlib.h>
@@ -22,7 +23,7 @@ struct listen {
     struct ear ears[FLOW_MAX_CHANNELS];
     struct strips *strips;
     uint32_t strip_channel;                   /* the first that listens; 0: none */
-    uint32_t impulse_channel;                 /* whose impulses are given; 0: none */
+    struct measuring measuring;               /* whose impulses are given */
     uint32_t gate_channel;                    /* whose impulses mask what the stream hears; 0: none */
     uint64_t n_hidden[CATALOGUE_MAX_CLASSES]; /* calls that the own source covered */
     uint64_t n_found[CATALOGUE_MAX_CLASSES];
@@ -140,9 +141,9 @@ static void take_fault(void *context, uint32_t channel, const struct found_fault
 static void take_impulse(void *context, uint32_t channel, const struct found_impulse *found)
 {
     struct listen *listen = context;
-    if (channel != listen->impulse_channel)
+    if (!measuring_has(&listen->measuring, channel))
         return;
-    listen->n_impulses++;
+    listen->n_impulses += channel == listen->measuring.reference;
     struct event *event = add_event(listen, EVENT_IMPULSE, found->known_frame);
     const struct ear *ear = &listen->ears[channel - 1];
     struct impulse *impulse = &event->as.impulse;
@@ -163,6 +164,7 @@ static void take_impulse(void *context, uint32_t channel, const struct found_imp
                                 .clipped = found->clipped,
                                 .overlapped = found->overlapped,
                                 .weak = found->weak,
+                                .beside = channel != listen->measuring.reference,
                                 .whose = IMPULSE_UNKNOWN};
     for (uint32_t b = 0; b < found->n_bands; b++)
         impulse->band_sel_db[b] = found->band_sel_db[b];
@@ -236,23 +238,16 @@ static void take_joined(void *context, const struct joined_call *joined)
     memcpy(call->class_name, class->name, sizeof call->class_name);
 }
 
-/* Impulses are given of the first channel that only measures, else of the first that does both. The first
- * channel that listens masks the stream: a blow reaches it at another time than a far measuring channel. */
+/* The first channel that listens masks the stream: a blow reaches it at another time than a far measuring
+ * channel. */
 static void choose_channels(struct listen *listen)
 {
     const struct listen_setup *setup = &listen->setup;
-    uint32_t measure = 0, both = 0;
-    for (uint32_t i = setup->n_channels; i > 0; i--) {
-        enum channel_role role = setup->calibration[i - 1].role;
-        if (role == ROLE_MEASURE)
-            measure = i;
-        else
+    for (uint32_t i = setup->n_channels; i > 0; i--)
+        if (setup->calibration[i - 1].role != ROLE_MEASURE)
             listen->strip_channel = i;
-        if (role == ROLE_BOTH)
-            both = i;
-    }
-    listen->impulse_channel = measure ? measure : both;
-    bool has_source = listen->impulse_channel > 0 && setup->catalogue->n_classes > 0;
+    listen->measuring = measuring_choose(setup->n_channels, setup->calibration, setup->range_m);
+    bool has_source = listen->measuring.reference > 0 && setup->catalogue->n_classes > 0;
     listen->gate_channel = has_source ? listen->strip_channel : 0;
 }
 
@@ -268,9 +263,9 @@ static enum status create_ears(struct listen *listen)
     for (uint32_t i = 0; i < setup->n_channels; i++) {
         ear.channel = i + 1;
         ear.calibration = setup->calibration[i];
-        ear.measures_impulses = ear.channel == listen->impulse_channel;
+        ear.measures_impulses = measuring_has(&listen->measuring, ear.channel);
         ear.gates = ear.channel == listen->gate_channel;
-        ear.finds_impulses = ear.gates || ear.channel == listen->impulse_channel;
+        ear.finds_impulses = ear.gates || ear.measures_impulses;
         enum status status = ear_create(&ear, &listen->ears[i]);
         if (status != STATUS_OK)
             return status;
@@ -420,7 +415,7 @@ static bool can_hear(const struct listen *listen, uint32_t class_index)
 static void account_for_impulses(const struct listen *listen, struct class_account *out)
 {
     struct impulse_rejections why;
-    impulse_finder_get_rejections(listen->ears[listen->impulse_channel - 1].impulses, &why);
+    impulse_finder_get_rejections(listen->ears[listen->measuring.reference - 1].impulses, &why);
     *out = (struct class_account){.name = "impulse",
                                   .hearable = true,
                                   .n_found = listen->n_impulses,
@@ -442,7 +437,7 @@ uint32_t listen_get_accounts(const struct listen *listen, struct class_account o
         out[c].n_found = listen->n_found[c];
         memcpy(out[c].rejected, rejections[c], sizeof out[c].rejected);
     }
-    if (listen->impulse_channel == 0)
+    if (listen->measuring.reference == 0)
         return catalogue->n_classes;
     account_for_impulses(listen, &out[catalogue->n_classes]);
     return catalogue->n_classes + 1;

@@ -41,6 +41,7 @@ struct listen_setup {
     double rate_hz;      /* 8 kHz to 1 MHz */
     struct time_map map; /* from the stream's frames to watch time */
     struct calibration calibration[FLOW_MAX_CHANNELS];
+    double range_m[FLOW_MAX_CHANNELS]; /* slant, from the source; NAN or 0 where unknown */
     const struct catalogue *catalogue; /* borrowed for the life of the object */
     struct column_sink columns; /* the strips of the stream's first listening channel; take may be NULL */
 };

@@ -35,6 +35,7 @@ static enum status impulse_body(const struct event *event, struct text *out)
     body_number(&body, "background_db", impulse->background_db, ROUND_DECIMALS_DB);
     body_decibels(&body, "bands", impulse->band_sel_db,
                   impulse->n_bands < LEVEL_MAX_BANDS ? impulse->n_bands : LEVEL_MAX_BANDS);
+    body_bool(&body, "beside", impulse->beside);
     body_integer(&body, "channel", impulse->channel);
     body_bool(&body, "clipped", impulse->clipped);
     body_number(&body, "effective_s", impulse->effective_s, ROUND_DECIMALS_S);

@@ -81,6 +81,7 @@ enum status body_of_source(const struct outcome *outcome, struct text *out)
     body_number(&body, "back_high_db", source->back_high_db, ROUND_DECIMALS_DB);
     body_number(&body, "back_low_db", source->back_low_db, ROUND_DECIMALS_DB);
     body_integer(&body, "channel", source->channel);
+    body_bool(&body, "fitted", source->fitted);
     body_id(&body, outcome->run, outcome->stream, "source", outcome->counter);
     body_decibels(&body, "insertion_bands_db", source->insertion_band_db, source->n_insertion_bands);
     body_decibels(&body, "insertion_bands_high_db", source->insertion_band_high_db,
@@ -93,11 +94,15 @@ enum status body_of_source(const struct outcome *outcome, struct text *out)
     body_text_or_null(&body, "model", source->model);
     body_integer(&body, "n_clipped", source->n_clipped);
     body_number(&body, "n_db", source->n_db, ROUND_DECIMALS_DB);
+    body_number(&body, "n_high_db", source->n_high_db, ROUND_DECIMALS_DB);
     body_integer(&body, "n_impulses", source->n_impulses);
+    body_number(&body, "n_low_db", source->n_low_db, ROUND_DECIMALS_DB);
     put_counts(&body, source);
     body_number(&body, "peak_db", source->peak_db, ROUND_DECIMALS_DB);
     body_number(&body, "quieting_falls_db", source->quieting_falls_db, ROUND_DECIMALS_DB);
     body_bool(&body, "quieting_on", source->quieting_on);
+    body_number(&body, "range_high_m", source->range_high_m, ROUND_DECIMALS_M);
+    body_number(&body, "range_low_m", source->range_low_m, ROUND_DECIMALS_M);
     body_number(&body, "range_m", source->range_m, ROUND_DECIMALS_M);
     body_text_or_null(&body, "reason", source->reason);
     put_reductions(&body, source);

@@ -39,7 +39,8 @@ const struct schema_object views_schema[] = {
         COLUMN("insertion_high_db") COLUMN("insertion_bands_db") COLUMN("insertion_bands_low_db")
         COLUMN("insertion_bands_high_db") COLUMN("reductions") COLUMN("n_quieting_off") COLUMN("n_quieting_on")
         COLUMN("quieting_falls_db") COLUMN("warning") COLUMN("n_clipped") COLUMN("n_overlapped")
-        COLUMN("n_weak") COLUMN("n_other") COLUMN("n_unknown") COLUMN("n_relative") COLUMN("n_refused")),
+        COLUMN("n_weak") COLUMN("n_other") COLUMN("n_unknown") COLUMN("n_relative") COLUMN("n_refused")
+        COLUMN("n_low_db") COLUMN("n_high_db") COLUMN("fitted") COLUMN("range_low_m") COLUMN("range_high_m")),
     VIEW("call",
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
@@ -50,13 +51,14 @@ const struct schema_object views_schema[] = {
         COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db") COLUMN("whose")
         COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak") COLUMN("effective_s")
         COLUMN("kurtosis") COLUMN("window_s") COLUMN("positive_impulse_pa_s") COLUMN("bands")
-        COLUMN("refused")),
+        COLUMN("refused") COLUMN("beside")),
     /* No kind: what the impulses of a job come to. */
     {"view", "impulse_count",
      "CREATE VIEW impulse_count AS SELECT stream, job, whose, COUNT(*) AS impulses, MIN(time_s) AS first_s, "
      "MAX(time_s) AS last_s, CASE WHEN MAX(time_s) > MIN(time_s) THEN ROUND(60.0 * (COUNT(*) - 1) / "
      "(MAX(time_s) - MIN(time_s)), 2) END AS per_minute, SUM(clipped) AS clipped, "
-     "SUM(overlapped) AS overlapped, SUM(weak) AS weak FROM impulse GROUP BY stream, job, whose"},
+     "SUM(overlapped) AS overlapped, SUM(weak) AS weak FROM impulse WHERE beside IS NOT 1 "
+     "GROUP BY stream, job, whose"},
     {"view", "level",
      "CREATE VIEW level AS SELECT seq, CAST(json_extract(body, '$.id') AS INTEGER) AS run, utc, "
      "json_extract(body, '$.id') AS id" COLUMN("stream") COLUMN("channel") ", second.value AS start_s"

@@ -10,16 +10,6 @@
 
 #define MINUTE_NS (60 * TIME_NS_PER_S)
 
-static struct source_law law_of(const struct tally_setup *setup, double low_hz, double high_hz)
-{
-    return (struct source_law){.metric = METRIC_SEL_SINGLE,
-                               .low_hz = low_hz,
-                               .high_hz = high_hz,
-                               .loss = {.law = LOSS_POWER, .n_db = setup->loss_n_db},
-                               .n_spread_db = setup->loss_n_spread_db,
-                               .scatter_db = setup->scatter_db};
-}
-
 enum status tally_create(const struct tally_setup *setup, struct tally **out)
 {
     if (!setup->criteria || setup->criteria->n == 0 || setup->n_streams < 1 ||
@@ -29,10 +19,6 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
     if (!tally)
         return STATUS_NO_MEMORY;
     tally->setup = *setup;
-    /* The law that the site set is for every band: no fit stands behind it. */
-    tally->sea =
-        (struct source_sea){.n_laws = 1, .has_water = true, .water = setup->water, .n_db = setup->loss_n_db};
-    tally->sea.laws[0] = law_of(setup, 1, 1e6);
     tally->sums = calloc(setup->n_streams, sizeof *tally->sums);
     const struct exposure_setup exposure = {.n_criteria = setup->criteria->n,
                                             .criteria = setup->criteria->items,
@@ -42,9 +28,9 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
                                             .day_start_ns = setup->day_start_ns,
                                             .level_spread_db = setup->level_spread_db,
                                             .loss = {.between = source_sea_between, .context = &tally->sea}};
-    enum status status = tally->sums ? STATUS_OK : STATUS_NO_MEMORY;
+    enum status status =
+        tally->sums ? tally_fit_create(&setup->water, setup->sound_speed_m_s, &tally->fit) : STATUS_NO_MEMORY;
     for (uint32_t i = 0; i < setup->n_streams && status == STATUS_OK; i++) {
-        tally->sums[i].peak_db = -INFINITY;
         tally_limits_reset(&tally->sums[i].limits, setup->criteria);
         tally_warnings_reset(&tally->sums[i].warnings, setup->criteria, setup->zone_edge_m,
                              setup->soft_start_s);
@@ -54,6 +40,7 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
         tally_destroy(tally);
         return status;
     }
+    tally_set_laws(tally);
     *out = tally;
     return STATUS_OK;
 }
@@ -64,13 +51,9 @@ void tally_destroy(struct tally *tally)
         return;
     for (uint32_t i = 0; tally->sums && i < tally->setup.n_streams; i++)
         exposure_destroy(tally->sums[i].exposure);
+    tally_fit_destroy(tally->fit);
     free(tally->sums);
     free(tally);
-}
-
-static double finite_or_nan(double x)
-{
-    return isfinite(x) ? x : NAN;
 }
 
 static void fill_place(const struct tally *tally, uint32_t i, uint32_t *stream, uint32_t *channel, char *job)
@@ -132,57 +115,6 @@ static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, con
         say_finding(tally, i, watch_ns, &finding, said, sink);
 }
 
-static int by_level(const void *a, const void *b)
-{
-    float x = *(const float *)a, y = *(const float *)b;
-    return (x > y) - (x < y);
-}
-
-static double median_sel_db(const struct sums *sums)
-{
-    float sorted[TALLY_KEPT_IMPULSES];
-    uint32_t n = sums->n_impulses < TALLY_KEPT_IMPULSES ? sums->n_impulses : TALLY_KEPT_IMPULSES;
-    if (n == 0)
-        return NAN;
-    memcpy(sorted, sums->sel_db, n * sizeof sorted[0]);
-    qsort(sorted, n, sizeof sorted[0], by_level);
-    return n % 2 ? sorted[n / 2] : 0.5 * ((double)sorted[n / 2 - 1] + sorted[n / 2]);
-}
-
-static void fill_numbers(const struct tally *tally, double sel_db, double range_m, struct source_outcome *out)
-{
-    const struct source_law law = law_of(&tally->setup, 10, 2e4);
-    const struct source_measurement measurement = {.metric = METRIC_SEL_SINGLE,
-                                                   .level_db = sel_db,
-                                                   .low_hz = 10,
-                                                   .high_hz = 2e4,
-                                                   .spread_db = tally->setup.level_spread_db,
-                                                   .range_m = range_m,
-                                                   .off_axis_deg = NAN,
-                                                   .sound_speed_m_s = 1500};
-    struct source_numbers numbers;
-    out->at_750_m_db = out->at_750_m_low_db = out->at_750_m_high_db = NAN;
-    out->back_db = out->back_low_db = out->back_high_db = out->n_db = NAN;
-    if (source_numbers_get(&measurement, &tally->setup.shape, &law, &numbers) != STATUS_OK) {
-        snprintf(out->reason, sizeof out->reason, "no impulse with a level in dB re 1 uPa");
-        return;
-    }
-    if (numbers.at_750_m.known) {
-        out->at_750_m_db = numbers.at_750_m.db;
-        out->at_750_m_low_db = numbers.at_750_m.low_db;
-        out->at_750_m_high_db = numbers.at_750_m.high_db;
-    }
-    if (numbers.back_calculated.known) {
-        out->back_db = numbers.back_calculated.db;
-        out->back_low_db = numbers.back_calculated.low_db;
-        out->back_high_db = numbers.back_calculated.high_db;
-    }
-    const char *reason = numbers.at_750_m.known ? numbers.back_calculated.reason : numbers.at_750_m.reason;
-    snprintf(out->reason, sizeof out->reason, "%s", reason);
-    snprintf(out->model, sizeof out->model, "%s", numbers.model);
-    out->n_db = numbers.n_db;
-}
-
 /* A quieting measure that takes off less than it did, said once a job. */
 static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
@@ -193,33 +125,48 @@ static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, co
     say_finding(tally, i, watch_ns, &finding, &sums->falling, sink);
 }
 
-static void say_source(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
+/* What one channel heard; of the reference also what quieting and the soft start come to. */
+static void say_source(struct tally *tally, uint32_t i, uint32_t channel, int64_t watch_ns,
+                       const struct outcome_sink *sink)
 {
-    const struct sums *sums = &tally->sums[i];
+    struct sums *sums = &tally->sums[i];
+    struct tally_channel *heard = &sums->channels[channel - 1];
     struct outcome outcome = {.kind = OUTCOME_SOURCE, .run = tally->run, .watch_ns = watch_ns};
     struct source_outcome *out = &outcome.as.source;
-    if (sums->n_impulses + sums->counts.n_relative + sums->counts.n_refused == 0)
+    struct source_measurement measured = {.metric = METRIC_SEL_SINGLE,
+                                          .low_hz = 10,
+                                          .high_hz = 2e4,
+                                          .spread_db = tally->setup.level_spread_db,
+                                          .range_m = tally_range_m(tally, i + 1, channel),
+                                          .off_axis_deg = NAN,
+                                          .sound_speed_m_s = 1500};
+    static const struct quieting none;
+    bool counts = channel == sums->channel;
+    if (!tally_channel_heard(heard))
         return;
+    heard->changed = false;
     fill_place(tally, i, &out->stream, &out->channel, out->job);
-    out->n_impulses = sums->n_impulses;
-    tally_counts_fill(&sums->counts, out);
-    out->range_m = tally_range_m(tally, i + 1, sums->channel);
-    out->sel_db = median_sel_db(sums);
-    out->peak_db = finite_or_nan(sums->peak_db);
-    fill_numbers(tally, out->sel_db, out->range_m, out);
+    out->channel = channel;
+    tally_channel_band(heard, &measured.low_hz, &measured.high_hz);
+    tally_channel_fill(heard, &measured, &tally->setup.shape, tally_law_of_channel(tally, heard), out);
     out->quieting_on = tally->quieting_on;
-    tally_fill_quieting(&sums->quieting, tally->setup.criteria, out);
-    tally_warnings_text(&sums->warnings, tally->setup.criteria, out->warning);
+    tally_fill_quieting(counts ? &sums->quieting : &none, tally->setup.criteria, out);
+    if (counts)
+        tally_warnings_text(&sums->warnings, tally->setup.criteria, out->warning);
     outcome.counter = ++tally->n_sources;
     sink->take(sink->context, &outcome);
 }
 
 static void say_all(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)
 {
-    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
-        if (!tally->sums[i].changed || tally->silent)
+    if (tally_fit_update(tally->fit))
+        tally_set_laws(tally);
+    for (uint32_t i = 0; i < tally->setup.n_streams && !tally->silent; i++) {
+        for (uint32_t channel = 1; channel <= FLOW_MAX_CHANNELS; channel++)
+            if (tally->sums[i].channels[channel - 1].changed)
+                say_source(tally, i, channel, watch_ns, sink);
+        if (!tally->sums[i].changed)
             continue;
-        say_source(tally, i, watch_ns, sink);
         say_exposures(tally, i, watch_ns, sink);
         check_quieting(tally, i, watch_ns, sink);
         tally->sums[i].changed = false;
@@ -235,8 +182,8 @@ static void check_warning(struct tally *tally, uint32_t i, int64_t watch_ns, con
     if (warning <= sums->warned)
         return;
     sums->warned = warning;
-    if (!tally->silent)
-        say_source(tally, i, watch_ns, sink);
+    if (!tally->silent && sums->channel > 0)
+        say_source(tally, i, sums->channel, watch_ns, sink);
 }
 
 /* A soft start begins or ends: an early warning is over with it. */
@@ -248,8 +195,8 @@ static void take_phase(struct tally *tally, enum phase phase, int64_t watch_ns,
         tally_warnings_phase(&sums->warnings, phase, watch_ns);
         if (phase == PHASE_SOFT_START)
             continue;
-        if (sums->warned != ZONE_NO_WARNING && !tally->silent)
-            say_source(tally, i, watch_ns, sink);
+        if (sums->warned != ZONE_NO_WARNING && !tally->silent && sums->channel > 0)
+            say_source(tally, i, sums->channel, watch_ns, sink);
         sums->warned = ZONE_NO_WARNING;
     }
 }

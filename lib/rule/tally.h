@@ -2,9 +2,12 @@
  * criteria that the site chose, and says them as outcomes of its own, each minute in which something was
  * added and at the end of a job.
  *
- * Only impulses that the watch called ours are summed, only on calibrated channels; another project's never
- * are. State is a function of the outcomes taken: taking them again from a ledger rebuilds it. Call order:
- * create; take every outcome of the watch in order; destroy. */
+ * Only impulses that the watch called ours are summed, only on calibrated channels, of the reference channel
+ * of each stream (rule/blows.h); another project's never are. What channels beside it measure says how sound
+ * falls with range: once a fit stands (rule/tally_fit.h), it moves levels to 750 m and to the distances of
+ * criteria instead of the N that was set, in the band it was fitted on, until the job ends; what was summed
+ * before stays as it was moved then. State is a function of the outcomes taken: taking them again from a
+ * ledger rebuilds it. Call order: create; take every outcome of the watch in order; destroy. */
 #ifndef RULE_TALLY_H
 #define RULE_TALLY_H
 
@@ -28,6 +31,7 @@ struct tally_setup {
     struct source_shape shape;
     double loss_n_db, loss_n_spread_db; /* N lg r; how unsure N is, one standard deviation */
     struct absorption water;            /* of the sea: added to N lg r at each frequency */
+    double sound_speed_m_s;             /* for pairing blows (rule/blows.h); 0: unknown */
     double level_spread_db;             /* of calibration and place */
     double scatter_db;                  /* of one impulse about the loss law */
     double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */

@@ -2,28 +2,25 @@
  *
  *   tally.c       create, and what is said
  *   tally_take.c  what is summed, and what counts as said
+ *   tally_law.c   by which loss law levels are moved
  */
 #ifndef RULE_TALLY_INNER_H
 #define RULE_TALLY_INNER_H
 
 #include "level/quieting.h"
 #include "rule/tally.h"
-#include "rule/tally_counts.h"
+#include "rule/tally_channel.h"
+#include "rule/tally_fit.h"
 #include "rule/tally_limits.h"
 #include "rule/tally_quieting.h"
 #include "rule/tally_warning.h"
 
-#define TALLY_KEPT_IMPULSES 4096 /* of the job, for the median: more than an hour of blows */
-
 /* One stream's sums. */
 struct sums {
     struct exposure *exposure;
-    uint32_t channel; /* whose impulses they are; 0 before the first */
-    uint32_t n_impulses;
-    float sel_db[TALLY_KEPT_IMPULSES]; /* of the job, a ring */
-    double peak_db;
+    uint32_t channel; /* whose impulses they are, the reference (rule/blows.h); 0 before the first */
     bool changed;
-    struct tally_counts counts; /* of the job */
+    struct tally_channel channels[FLOW_MAX_CHANNELS]; /* those beside the reference too */
     struct tally_limits limits;
     struct tally_warnings warnings;
     enum zone_warning warned; /* the strongest that was said in this soft start */
@@ -35,8 +32,9 @@ struct sums {
 
 struct tally {
     struct tally_setup setup;
-    struct sums *sums; /* [n_streams] */
-    struct source_sea sea;
+    struct sums *sums;     /* [n_streams] */
+    struct source_sea sea; /* the law that was fitted, while there is one, before the one that was set */
+    struct tally_fit *fit;
     char job[IMPULSE_JOB_SIZE];
     int64_t job_ns; /* since when it is open, or none is */
     bool quieting_on;
@@ -51,5 +49,12 @@ double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channe
 void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse);
 void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level);
 void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns);
+
+/* tally_law.c: after the fit has changed, distances and levels at 750 m go by it from now on. */
+void tally_set_laws(struct tally *tally);
+/* The law that moves a level: the first that covers the band of most of the energy. Borrowed until the laws
+ * are set again. */
+const struct source_law *tally_law_of_channel(const struct tally *tally, const struct tally_channel *channel);
+const struct source_law *tally_law_of_impulse(const struct tally *tally, const struct impulse *impulse);
 
 #endif

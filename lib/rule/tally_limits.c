@@ -49,11 +49,12 @@ bool tally_move_level(const struct impulse *impulse, const struct tally_move *mo
     double level_db = level_of(impulse, metric);
     if (!(move->range_m > 0) || impulse->overlapped || !isfinite(level_db))
         return false;
-    double decades = log10(to_m / move->range_m);
+    double fall_db, fall_spread_db;
+    source_law_between(move->law, move->range_m, to_m, &fall_db, &fall_spread_db);
     out->measured = zone_is_measured(move->role, move->range_m, to_m);
-    out->level_db = level_db - (out->measured ? 0 : move->loss_n_db * decades);
-    out->constant_spread_db = hypot(move->level_spread_db, move->loss_n_spread_db * decades);
-    out->spread_db = hypot(out->constant_spread_db, move->scatter_db);
+    out->level_db = level_db - (out->measured ? 0 : fall_db);
+    out->constant_spread_db = hypot(move->level_spread_db, fall_spread_db);
+    out->spread_db = hypot(out->constant_spread_db, move->law->scatter_db);
     return true;
 }
 

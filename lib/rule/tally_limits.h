@@ -37,8 +37,9 @@ void tally_limits_begin_job(struct tally_limits *limits);
 /* How levels move from the channel to the limit's range. */
 struct tally_move {
     enum channel_role role;
-    double range_m; /* NAN: unknown; then nothing is judged */
-    double loss_n_db, loss_n_spread_db, level_spread_db, scatter_db;
+    double range_m;               /* NAN: unknown; then nothing is judged */
+    const struct source_law *law; /* that covers the impulse; borrowed */
+    double level_spread_db;
 };
 /* One level there. */
 struct tally_moved {

@@ -13,28 +13,31 @@ void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impul
 {
     struct sums *sums = &tally->sums[stream - 1];
     struct exposure_sound sound;
-    if (tally->setup.sound != SOUND_IMPULSIVE)
+    if (tally->setup.sound != SOUND_IMPULSIVE || impulse->channel < 1 || impulse->channel > FLOW_MAX_CHANNELS)
         return; /* in the levels of its seconds it is counted already */
-    if (!tally_counts_take(&sums->counts, impulse)) {
-        if (impulse->whose == IMPULSE_OURS && sums->channel == 0)
-            sums->channel = impulse->channel;
-        sums->changed = sums->changed || impulse->whose == IMPULSE_OURS; /* people hear that it is missing */
+    struct tally_channel *channel = &sums->channels[impulse->channel - 1];
+    double range_m = tally_range_m(tally, stream, impulse->channel);
+    bool counts = tally_channel_counts(channel, impulse);
+    if (counts)
+        tally_fit_push(tally->fit, stream, range_m, impulse);
+    if (counts && impulse->beside)
+        tally_channel_push(channel, impulse);
+    if (impulse->whose != IMPULSE_OURS || impulse->beside)
+        return; /* of a blow that counts the reference channel has the level */
+    sums->changed = true;
+    if (!counts) {
+        sums->channel = sums->channel ? sums->channel : impulse->channel;
         return;
     }
-    exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db,
-                        tally_range_m(tally, stream, impulse->channel), &sound);
+    exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db, range_m, &sound);
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)
         return;
     sums->channel = impulse->channel;
-    sums->sel_db[sums->n_impulses++ % TALLY_KEPT_IMPULSES] = (float)impulse->sel_db;
-    sums->peak_db = impulse->peak_db > sums->peak_db ? impulse->peak_db : sums->peak_db;
-    sums->changed = true;
+    tally_channel_push(channel, impulse);
     const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
-                                    .range_m = tally_range_m(tally, stream, impulse->channel),
-                                    .loss_n_db = tally->setup.loss_n_db,
-                                    .loss_n_spread_db = tally->setup.loss_n_spread_db,
-                                    .level_spread_db = tally->setup.level_spread_db,
-                                    .scatter_db = tally->setup.scatter_db};
+                                    .range_m = range_m,
+                                    .law = tally_law_of_impulse(tally, impulse),
+                                    .level_spread_db = tally->setup.level_spread_db};
     tally_limits_push(&sums->limits, impulse, &move);
     tally_warnings_push(&sums->warnings, impulse, &move);
     struct quieting_impulse quieted = {
@@ -62,13 +65,14 @@ void tally_take_level(struct tally *tally, uint32_t stream, const struct level *
 void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
 {
     tally->job_ns = watch_ns;
+    tally_fit_begin_job(tally->fit);
+    tally_set_laws(tally);
     snprintf(tally->job, sizeof tally->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
     for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
         struct sums *sums = &tally->sums[i];
         exposure_begin_job(sums->exposure);
-        sums->n_impulses = 0;
-        sums->counts = (struct tally_counts){0};
-        sums->peak_db = -INFINITY;
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
+            tally_channel_begin_job(&sums->channels[c]);
         tally_limits_begin_job(&sums->limits);
         quieting_reset(&sums->quieting);
         sums->falling = (struct tally_said){ZONE_NOTHING, ""};

@@ -30,6 +30,11 @@ struct watch_setup {
     /* The channels (bit 0: channel 1) of streams 1, 2 ... that listen. Time is unheard for the acoustic watch
      * when none of them hears. All 0: channel 1 of stream 1. */
     uint32_t listening[WATCH_MAX_STREAMS];
+    /* Slant ranges of the channels from the source, m (NAN or 0: unknown), and the speed of sound: a blow
+     * that two streams hear at different ranges is one (rule/blows.h). All 0: what arrives together is one.
+     */
+    double range_m[WATCH_MAX_STREAMS][FLOW_MAX_CHANNELS];
+    double sound_speed_m_s;
 };
 
 struct watch;

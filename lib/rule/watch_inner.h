@@ -13,6 +13,7 @@
 #ifndef RULE_WATCH_INNER_H
 #define RULE_WATCH_INNER_H
 
+#include "rule/blows.h"
 #include "rule/contact.h"
 #include "rule/spans.h"
 #include "rule/watch.h"
@@ -51,7 +52,9 @@ struct source {
     char said_id[FLOW_ID_SIZE];
     bool heard;         /* impulses are being heard */
     int64_t impulse_ns; /* the last one */
-    int64_t blow_ns;    /* the last that was counted: one blow is heard on several channels */
+    struct blows blows; /* those that were counted: one blow is heard by several streams */
+    struct blows reference[WATCH_MAX_STREAMS]; /* by each stream's reference channel */
+    double reference_m[WATCH_MAX_STREAMS];     /* its range; 0 before its first blow */
     char impulse_id[FLOW_ID_SIZE];
     uint32_t n_unsaid;               /* impulses since the last silence that nobody has spoken for */
     bool heard_in_phase;             /* since the source began to sound */

@@ -3,13 +3,13 @@
 #include "rule/watch_inner.h"
 #include <math.h>
 #include <stdio.h>
-#include <stdlib.h>
 #include <string.h>
 
 /* The last blows before somebody enters 'stopped' contradict nobody. */
 #define GRACE_NS (5 * TIME_NS_PER_S)
-/* Impulses closer than this are one blow on several channels: no hammer or array strikes faster. */
-#define SAME_BLOW_NS (TIME_NS_PER_S / 5)
+/* An impulse is known at most 1.3 s after its onset, and seldom a second later on one channel than on
+ * another: what reaches a channel by this much later than the reference is known of the reference. */
+#define REFERENCE_LEAD_S 1.0
 
 bool source_sounds(enum phase phase)
 {
@@ -31,8 +31,11 @@ bool source_sounds(enum phase phase)
 void source_reset(struct source *source)
 {
     source->said = PHASE_OFF;
-    source->said_ns = source->impulse_ns = source->blow_ns = source->on_ns = -1;
+    source->said_ns = source->impulse_ns = source->on_ns = -1;
     source->soft_start_ns = source->quiet_ns = -1;
+    memset(&source->blows, 0, sizeof source->blows);
+    memset(source->reference, 0, sizeof source->reference);
+    memset(source->reference_m, 0, sizeof source->reference_m);
     for (size_t i = 0; i < WATCH_MAX_CHANNELS; i++)
         whose_reset(&source->whose[i]);
 }
@@ -88,13 +91,41 @@ static double level_of(const struct impulse *impulse)
     return isfinite(impulse->sel_db) ? impulse->sel_db : isfinite(impulse->peak_db) ? impulse->peak_db : NAN;
 }
 
+static bool is_placed(uint32_t stream, const struct impulse *impulse)
+{
+    return stream >= 1 && stream <= WATCH_MAX_STREAMS && impulse->channel >= 1 &&
+           impulse->channel <= FLOW_MAX_CHANNELS;
+}
+
+static double range_of(const struct watch *watch, uint32_t stream, const struct impulse *impulse)
+{
+    return is_placed(stream, impulse) ? watch->setup.range_m[stream - 1][impulse->channel - 1] : NAN;
+}
+
+/* The reference channel decides for those beside it: it has heard the blow, or must have if it were ours. */
+static void follow_reference(struct watch *watch, uint32_t stream, struct impulse *impulse)
+{
+    struct source *source = &watch->source;
+    double range_m = range_of(watch, stream, impulse), speed_m_s = watch->setup.sound_speed_m_s;
+    int64_t struck_ns = blow_struck_ns(impulse->time_ns, range_m, speed_m_s);
+    if (!is_placed(stream, impulse))
+        return;
+    if (!impulse->beside) {
+        source->reference_m[stream - 1] = range_m;
+        blows_add(&source->reference[stream - 1], struck_ns, impulse->whose);
+        return;
+    }
+    double lead_m = range_m - source->reference_m[stream - 1];
+    if (!blows_find(&source->reference[stream - 1], struck_ns, &impulse->whose) &&
+        impulse->whose == IMPULSE_OURS && lead_m > REFERENCE_LEAD_S * speed_m_s)
+        impulse->whose = IMPULSE_UNKNOWN;
+}
+
 void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *impulse)
 {
     struct source *source = &watch->source;
     /* Levels of channels cannot be compared: each has its own trains. Unknown ones share the first's. */
-    bool known = stream >= 1 && stream <= WATCH_MAX_STREAMS && impulse->channel >= 1 &&
-                 impulse->channel <= FLOW_MAX_CHANNELS;
-    size_t place = known ? (stream - 1) * FLOW_MAX_CHANNELS + impulse->channel - 1 : 0;
+    size_t place = is_placed(stream, impulse) ? (stream - 1) * FLOW_MAX_CHANNELS + impulse->channel - 1 : 0;
     const struct whose_said said = {.on = source_sounds(source->said),
                                     .job = *source->job != '\0',
                                     .on_ns = source->on_ns,
@@ -102,6 +133,7 @@ void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *i
     const struct whose_impulse heard = {
         .time_ns = impulse->time_ns, .level_db = level_of(impulse), .expected_ns = -1};
     impulse->whose = whose_take(&source->whose[place], &said, &heard);
+    follow_reference(watch, stream, impulse);
     snprintf(impulse->job, sizeof impulse->job, "%s", source->job);
 }
 
@@ -150,6 +182,8 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     struct source *source = &watch->source;
     const struct impulse *impulse = &event->as.impulse;
     bool of_job = *source->job != '\0', quiet_said = !source_sounds(source->said);
+    if (impulse->beside)
+        return; /* the reference channel hears it too, and speaks for the stream */
     if (impulse->whose == IMPULSE_OTHERS)
         return; /* another's hammer neither starts our work nor hides that ours has stopped */
     bool late = source->said_ns >= 0 && impulse->time_ns <= source->said_ns + GRACE_NS;
@@ -157,11 +191,11 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     if (impulse->time_ns > source->impulse_ns)
         source->impulse_ns = impulse->time_ns < watch->now_ns ? impulse->time_ns : watch->now_ns;
     flow_id(event->run, event->stream, "impulse", event->counter, source->impulse_id);
-    bool same = source->blow_ns >= 0 && llabs(impulse->time_ns - source->blow_ns) < SAME_BLOW_NS;
-    if (!same)
-        source->blow_ns = impulse->time_ns;
-    source->n_impulses += impulse->whose == IMPULSE_OURS && !same;
-    source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + !same;
+    double range_m = range_of(watch, event->stream, impulse);
+    int64_t struck_ns = blow_struck_ns(impulse->time_ns, range_m, watch->setup.sound_speed_m_s);
+    bool first = blows_add(&source->blows, struck_ns, impulse->whose);
+    source->n_impulses += impulse->whose == IMPULSE_OURS && first;
+    source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + first;
     /* One bang is no source, but for a charge. */
     uint32_t enough = watch->permit->activity == ACTIVITY_EXPLOSIVES ? 1 : 2;
     if (source->n_unsaid >= enough) {

@@ -85,6 +85,14 @@ void fit_reset(struct fit *fit)
     fit->n = fit->next = 0;
 }
 
+enum status fit_set_absorption(struct fit *fit, double absorption_db_m)
+{
+    if (!isfinite(absorption_db_m) || absorption_db_m < 0.0)
+        return STATUS_BAD_ARGUMENT;
+    fit->absorption_db_m = absorption_db_m;
+    return STATUS_OK;
+}
+
 enum status fit_push(struct fit *fit, const struct fit_point *point)
 {
     if (!isfinite(point->range_m) || point->range_m <= 0.0 || !isfinite(point->level_db) ||
@@ -381,7 +389,7 @@ enum status fit_get(struct fit *fit, struct fitted *out)
     if (fit->n_samples < FIT_LEAST_POINTS)
         return STATUS_NOT_FOUND;
     double spread = spread_of_ranges(fit);
-    if (!(spread >= log10(FIT_LEAST_RATIO) - 1e-9))
+    if (!(spread >= log10(FIT_LEAST_RATIO * (1.0 - FIT_RATIO_TOLERANCE))))
         return STATUS_OUT_OF_RANGE;
     if (!weigh(fit, &result.scatter_db) ||
         !find_variance(fit, result.scatter_db, &straight, variance, &quantile))

@@ -25,6 +25,8 @@
 #include <stdint.h>
 
 #define FIT_LEAST_RATIO 4.0
+/* Hydrophones at 750 and 3,000 m, some way down, stand at slant ranges in a ratio a little below 4. */
+#define FIT_RATIO_TOLERANCE 0.002
 #define FIT_LEAST_POINTS 10
 #define FIT_REFERENCE_M 750.0
 
@@ -59,12 +61,14 @@ struct fit;
 enum status fit_create(uint32_t capacity, double absorption_db_m, struct fit **out);
 void fit_destroy(struct fit *fit);
 void fit_reset(struct fit *fit);
+/* For the points that are held and those to come. STATUS_BAD_ARGUMENT. */
+enum status fit_set_absorption(struct fit *fit, double absorption_db_m);
 /* STATUS_OUT_OF_RANGE, and the point is left out, for a range not above 0 or numbers that are not finite. */
 enum status fit_push(struct fit *fit, const struct fit_point *point);
 /* Fits; some milliseconds for 4,000 points. STATUS_NOT_FOUND: fewer than FIT_LEAST_POINTS points that share a
- * source level with another. STATUS_OUT_OF_RANGE: the ranges are in a ratio below FIT_LEAST_RATIO for more
- * than half of the points; a place with fewer than three points in and next to it does not count. *out is
- * untouched then. */
+ * source level with another. STATUS_OUT_OF_RANGE: the ranges are in a ratio below FIT_LEAST_RATIO (by more
+ * than FIT_RATIO_TOLERANCE of it) for more than half of the points; a place with fewer than three points in
+ * and next to it does not count. *out is untouched then. */
 enum status fit_get(struct fit *fit, struct fitted *out);
 
 /* What a level falls by from one range to another, dB, and the standard deviation of that. */
