@@ -7,8 +7,8 @@
  *   rms90   = 10 lg(0.9 E / T90 / 1 uPa2)                90 % of the energy over T90
  *   peak    = 20 lg(max |p| / 1 uPa), peak to peak = 20 lg((max p - min p) / 1 uPa), of the samples
  *   effective duration = (sum s^2)^2 / (fs sum s^4), where s is the impulse without its background: with b
- *             Gaussian, sum s^4 = sum p^4 - 6 b sum s^2 - 3 b^2 n                ("effective signal
- * duration") kurtosis = mu4 / mu2^2 of the window as it is; means nothing without the window's length
+ *             Gaussian, sum s^4 = sum p^4 - 6 b sum s^2 - 3 b^2 n; "effective signal duration"
+ *   kurtosis = mu4 / mu2^2 of the window as it is; means nothing without the window's length
  *   positive impulse = sum(p) / fs over the stretch of positive pressure that holds the greatest one, Pa s
  * Sample i stands for the time from i - 1/2 to i + 1/2; times between samples are interpolated linearly in
  * the running sum. t5 is its last passage of 5 % before it passes one half, t95 the first of 95 % after, so

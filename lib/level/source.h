@@ -5,11 +5,13 @@
  *   received         as measured, at its range
  *   at 750 m         received - loss(range to 750 m): the range at which ISO 18406:2017 and national limits
  *                    speak of piles
- *   back-calculated  received + loss(1 m to range): source level (dB re 1 uPa m) of an SPL, energy source
- * level (dB re 1 uPa2 m2 s) of a SEL. None of a pile, which is a line source: in its near field no level of a
- * point stands for it. None of an array off its axis, or nearer than its far field (aperture^2 f / c,
- * Fraunhofer's distance). None of a peak, which does not fall as energy does. A loss law holds for the band
- * it was fitted or set for: one of 100 to 500 Hz says nothing about clicks. */
+ *   back-calculated  received + loss(1 m to range): source level (dB re 1 uPa m) of an SPL, energy
+ *                    source level (dB re 1 uPa2 m2 s) of a SEL
+ *
+ * No back-calculated level of a pile, which is a line source: in its near field no level of a point stands
+ * for it. None of an array off its axis, or nearer than its far field (aperture^2 f / c, Fraunhofer's
+ * distance). None of a peak, which does not fall as energy does. A loss law holds for the band it was fitted
+ * or set for: one of 100 to 500 Hz says nothing about clicks. */
 #ifndef LEVEL_SOURCE_H
 #define LEVEL_SOURCE_H
 

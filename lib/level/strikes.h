@@ -1,9 +1,10 @@
 /* Arithmetic of many strikes: what a sum of them gives, and what one of them is in a long mean.
  *
  *   N equal strikes of SEL L      L + 10 lg N
- *   strike SEL from a long mean   10 lg(10^(Leq/10) - 10^(Lbg/10)) - 10 lg(n T0 / T), T0 = 1 s (German
- * practice, from memory) less the background           10 lg(10^(L/10) - 10^(Lbg/10)); ISO 17208-1:2016
- * allows it from 3 dB on */
+ *   strike SEL from a long mean   10 lg(10^(Leq/10) - 10^(Lbg/10)) - 10 lg(n T0 / T), T0 = 1 s
+ *                                 (German practice, from memory)
+ *   less the background           10 lg(10^(L/10) - 10^(Lbg/10)); ISO 17208-1:2016 allows it from 3 dB on
+ */
 #ifndef LEVEL_STRIKES_H
 #define LEVEL_STRIKES_H
 

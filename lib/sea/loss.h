@@ -9,9 +9,11 @@
  *                 between two ranges have a meaning: a pile is a line source, and there is no level at 1 m
  *   energy flux   isovelocity water of depth H over a floor that reflects with |R| = exp(-eta theta) up to
  *                 the critical angle theta_c (Weston, "Intensity-range relations in oceanographic acoustics",
- *                 J. Sound Vib. 18, 271 (1971), integrated over grazing angles): 10 lg(r H / (2 theta_c)) -
- * 10 lg(sqrt(pi) erf(x) / (2 x)) + a r, x = theta_c sqrt(eta r / H); 20 lg r near the source, where that is
- * less Every law grows with range, so a threshold has one range. */
+ *                 J. Sound Vib. 18, 271 (1971), integrated over grazing angles):
+ *                 10 lg(r H / (2 theta_c)) - 10 lg(sqrt(pi) erf(x) / (2 x)) + a r,
+ *                 x = theta_c sqrt(eta r / H); 20 lg r near the source, where that is less
+ *
+ * Every law grows with range, so a threshold has one range. */
 #ifndef SEA_LOSS_H
 #define SEA_LOSS_H
 
