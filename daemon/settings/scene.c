@@ -1,11 +1,13 @@
 /* Scene files; see scene.h. Ranges that depend on each other are scene_check's. */
 #include "settings/scene.h"
+#include "scene/kind.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
 #define FAR_M 1e6
 #define LONG_S 1e7
+#define MAX_KINDS 96
 
 static void read_place(struct group_reader *group, struct scene_place *place)
 {
@@ -49,25 +51,41 @@ static void read_hydrophone(struct group_reader *group, void *out)
     calibration->known = sensitivity && gain && volts;
 }
 
+/* A kind by its name; the kind's own settings by their keys. */
+static void read_emitter(struct group_reader *group, const char *key, bool animals, const char *usual,
+                         struct scene_emitter *emitter)
+{
+    const char *names[MAX_KINDS];
+    unsigned n = 0, chosen = 0;
+    const struct scene_kind *kind;
+    for (unsigned i = 0; (kind = scene_kind_at(i)) != NULL && n < MAX_KINDS; i++)
+        if (kind->is_animal == animals)
+            names[n++] = kind->name;
+    bool known = group_word(group, key, READER_REQUIRED, names, n, &chosen);
+    *emitter = scene_emitter_of(known ? names[chosen] : usual);
+    read_track(group, &emitter->track);
+    read_count(group, "members", SCENE_MAX_MEMBERS, &emitter->members);
+    group_number(group, "spread_m", READER_OPTIONAL, 0, FAR_M, &emitter->spread_m);
+    read_times(group, &emitter->start_s, &emitter->end_s);
+    group_number(group, "source_level_db", READER_OPTIONAL, 20, 280, &emitter->source_level_db);
+    group_number(group, "interval_s", READER_OPTIONAL, 0.01, LONG_S, &emitter->interval_s);
+    group_number(group, "pulse_interval_s", READER_OPTIONAL, 0.001, 100, &emitter->pulse_interval_s);
+    read_count(group, "pulses", SCENE_MAX_PULSES, &emitter->pulses);
+    for (unsigned i = 0; emitter->kind && emitter->kind->settings[i].key; i++) {
+        const struct kind_setting *setting = &emitter->kind->settings[i];
+        group_number(group, setting->key, READER_OPTIONAL, setting->low, setting->high,
+                     &emitter->settings[i]);
+    }
+}
+
 static void read_animal(struct group_reader *group, void *out)
 {
-    const char *voices[VOICE_COUNT];
-    for (unsigned i = 0; i < VOICE_COUNT; i++)
-        voices[i] = scene_voice_text(i);
-    unsigned voice = VOICE_TONE;
-    group_word(group, "voice", READER_REQUIRED, voices, VOICE_COUNT, &voice);
-    struct scene_animal *animal = out;
-    *animal = scene_animal_of(voice);
-    read_track(group, &animal->track);
-    read_count(group, "members", SCENE_MAX_MEMBERS, &animal->members);
-    group_number(group, "spread_m", READER_OPTIONAL, 0, FAR_M, &animal->spread_m);
-    read_times(group, &animal->start_s, &animal->end_s);
-    group_number(group, "source_level_db", READER_OPTIONAL, 60, 260, &animal->source_level_db);
-    group_number(group, "interval_s", READER_OPTIONAL, 0.01, LONG_S, &animal->interval_s);
-    group_number(group, "pulse_interval_s", READER_OPTIONAL, 0.001, 100, &animal->pulse_interval_s);
-    read_count(group, "pulses", SCENE_MAX_PULSES, &animal->pulses);
-    group_number(group, "frequency_hz", READER_OPTIONAL, 1, 500000, &animal->frequency_hz);
-    group_number(group, "length_s", READER_OPTIONAL, 0.01, 60, &animal->length_s);
+    read_emitter(group, "voice", true, "tone", out);
+}
+
+static void read_other(struct group_reader *group, void *out)
+{
+    read_emitter(group, "kind", false, "", out);
 }
 
 static void read_step(struct group_reader *group, void *out)
@@ -182,6 +200,8 @@ static void read_scene(struct group_reader *root, struct scene *scene)
                                      sizeof scene->hydrophones[0], read_hydrophone);
     scene->n_animals =
         read_list(root, "animals", SCENE_MAX_ANIMALS, scene->animals, sizeof scene->animals[0], read_animal);
+    scene->n_emitters = read_list(root, "emitters", SCENE_MAX_EMITTERS, scene->emitters,
+                                  sizeof scene->emitters[0], read_other);
     scene->n_hammers =
         read_list(root, "hammers", SCENE_MAX_HAMMERS, scene->hammers, sizeof scene->hammers[0], read_hammer);
     scene->n_airguns =

@@ -1,27 +1,35 @@
-/* How animals and machines sound: recipes that make one call from a seed. Frequencies, lengths, intervals and
- * levels are of the published order; each recipe in recipe.c names what it follows. */
+/* What recipes share (kind_*.c), and the sounds of hammers, airguns, echosounders and shrimp. Frequencies,
+ * lengths, intervals and levels are of the published order; each recipe names what it follows. */
 #ifndef SCENE_RECIPE_H
 #define SCENE_RECIPE_H
 
 #include "base/random.h"
 #include "scene/emission.h"
+#include "scene/kind.h"
 #include "scene/scene.h"
 
-struct recipe_facts {
-    const char *name;
-    enum group group;
-    double source_level_db; /* of a tone: mean square; of a pulse: zero-to-peak */
-    double min_rate_hz;     /* a lower sampling rate does not carry the call */
-    double max_length_s;    /* of one call, without overrides */
-    double min_spacing_s;   /* from one call's start to the next, without overrides */
+/* A tone of one partial; its contour is yet to be set. Partials of those amplitudes. */
+void recipe_tone(struct sound *out, double length_s, double taper);
+void recipe_partials(struct sound *sound, const double *amplitude, uint32_t n);
+/* A pulse of parts; its length is yet to be measured. */
+void recipe_pulse(struct sound *out, enum sound_shape shape, const struct sound_part *parts, uint32_t n);
+
+/* How an animal strings its pulses. */
+struct recipe_rhythm {
+    uint32_t pulses;
+    double interval_s, low_s, high_s;
+    double walk;     /* sd of ln(interval) from one to the next, which is kept */
+    double scatter;  /* sd of ln(interval), which is forgotten */
+    double sweep_db; /* depth of the beam's sweep over the hydrophones */
+    double ramp; /* the intervals go exponentially to interval_s times this over the train; 0: they do not */
 };
 
-const struct recipe_facts *recipe_facts(enum scene_voice voice);
+/* Makes a train of the sound in *out by that rhythm; what the emitter states (pulses, pulse_interval_s)
+ * overrides it, and keeps the interval near one value. */
+void recipe_train(const struct scene_emitter *emitter, struct recipe_rhythm rhythm, struct random *random,
+                  struct emission *out);
 
-/* Makes the sound of one call (of a train: its pulse) and, for trains, the pulse times and gains.
- * `repertoire` names the animal: the same value gives the same unit types. `unit` is which of them. */
-void recipe_call(const struct scene_animal *animal, double rate_hz, struct random *random,
-                 uint64_t repertoire, uint32_t unit, struct emission *out);
+uint32_t recipe_between(struct random *random, uint32_t low, uint32_t high);
 
 /* A blow of a pile, a shot of an airgun array: exposure 1. A ping: mean square 1. A snap: peak 1. */
 void recipe_blow(double rate_hz, struct sound *out);

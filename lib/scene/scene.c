@@ -1,9 +1,10 @@
 /* What a scene is made of, and what makes one impossible; see scene.h. */
 #include "scene/scene.h"
-#include "scene/recipe.h"
+#include "scene/kind.h"
 #include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
+#include <string.h>
 
 void scene_reset(struct scene *scene)
 {
@@ -23,18 +24,33 @@ void scene_reset(struct scene *scene)
     };
 }
 
-struct scene_animal scene_animal_of(enum scene_voice voice)
+struct scene_emitter scene_emitter_of(const char *name)
 {
-    return (struct scene_animal){.voice = voice,
-                                 .track = {.at_start = {.x_m = 500, .z_m = 15}},
-                                 .members = 1,
-                                 .spread_m = 50,
-                                 .end_s = INFINITY,
-                                 .source_level_db = NAN,
-                                 .interval_s = NAN,
-                                 .pulse_interval_s = NAN,
-                                 .frequency_hz = 1000,
-                                 .length_s = 1};
+    struct scene_emitter emitter = {.kind = scene_kind_find(name),
+                                    .track = {.at_start = {.x_m = 500, .z_m = 15}},
+                                    .members = 1,
+                                    .spread_m = 50,
+                                    .end_s = INFINITY,
+                                    .source_level_db = NAN,
+                                    .interval_s = NAN,
+                                    .pulse_interval_s = NAN};
+    for (unsigned i = 0; emitter.kind && emitter.kind->settings[i].key; i++)
+        emitter.settings[i] = emitter.kind->settings[i].usual;
+    return emitter;
+}
+
+enum status scene_emitter_set(struct scene_emitter *emitter, const char *key, double value)
+{
+    for (unsigned i = 0; emitter->kind && emitter->kind->settings[i].key; i++) {
+        const struct kind_setting *setting = &emitter->kind->settings[i];
+        if (strcmp(setting->key, key) != 0)
+            continue;
+        if (!(value >= setting->low && value <= setting->high))
+            return STATUS_OUT_OF_RANGE;
+        emitter->settings[i] = value;
+        return STATUS_OK;
+    }
+    return STATUS_NOT_FOUND;
 }
 
 struct scene_hammer scene_hammer_of(void)
@@ -50,16 +66,6 @@ struct scene_place scene_track_at(const struct scene_track *track, double time_s
     place.x_m += along_m * cos(course);
     place.y_m += along_m * sin(course);
     return place;
-}
-
-const char *scene_voice_text(enum scene_voice voice)
-{
-    return recipe_facts(voice)->name;
-}
-
-enum group scene_voice_group(enum scene_voice voice)
-{
-    return recipe_facts(voice)->group;
 }
 
 /* Collects the n-th problem of those found. */
@@ -115,22 +121,38 @@ static bool too_near(const struct scene *scene, const struct scene_track *track)
     return near;
 }
 
-static void check_animal(const struct scene *scene, uint32_t i, struct search *search)
+/* Whatever a kind sounds at by its own settings must be in the band. */
+static void check_settings(const struct scene *scene, const struct scene_emitter *emitter, const char *list,
+                           uint32_t i, struct search *search)
 {
-    const struct scene_animal *animal = &scene->animals[i];
-    const struct recipe_facts *facts = recipe_facts(animal->voice);
-    problem(search, animal->members < 1 || animal->members > SCENE_MAX_MEMBERS,
-            "animal %u: members; allowed: 1 to %d", i + 1, SCENE_MAX_MEMBERS);
-    problem(search, scene->rate_hz < facts->min_rate_hz,
-            "animal %u: its calls need a sampling rate of at least %g Hz", i + 1, facts->min_rate_hz);
-    problem(search, animal->voice == VOICE_TONE && !(animal->frequency_hz <= 0.45 * scene->rate_hz),
-            "animal %u: frequency_hz; allowed: up to %g at this rate", i + 1, 0.45 * scene->rate_hz);
-    problem(search, animal->pulses > SCENE_MAX_PULSES, "animal %u: pulses; allowed: up to %d", i + 1,
+    for (unsigned k = 0; emitter->kind->settings[k].key; k++) {
+        const struct kind_setting *setting = &emitter->kind->settings[k];
+        double value = emitter->settings[k], high = setting->high;
+        if (strcmp(setting->key, "frequency_hz") == 0)
+            high = fmin(high, 0.45 * scene->rate_hz);
+        problem(search, !(value >= setting->low && value <= high),
+                "%s %u: %s; allowed: %g to %g at this rate", list, i + 1, setting->key, setting->low, high);
+    }
+}
+
+static void check_emitter(const struct scene *scene, const struct scene_emitter *emitter, const char *list,
+                          uint32_t i, struct search *search)
+{
+    const struct scene_kind *kind = emitter->kind;
+    problem(search, !kind, "%s %u: is of no kind", list, i + 1);
+    if (!kind)
+        return;
+    problem(search, emitter->members < 1 || emitter->members > SCENE_MAX_MEMBERS,
+            "%s %u: members; allowed: 1 to %d", list, i + 1, SCENE_MAX_MEMBERS);
+    problem(search, scene->rate_hz < kind->min_rate_hz, "%s %u: %s needs a sampling rate of at least %g Hz",
+            list, i + 1, kind->name, kind->min_rate_hz);
+    check_settings(scene, emitter, list, i, search);
+    problem(search, emitter->pulses > SCENE_MAX_PULSES, "%s %u: pulses; allowed: up to %d", list, i + 1,
             SCENE_MAX_PULSES);
-    problem(search, animal->interval_s <= 0 || animal->pulse_interval_s <= 0,
-            "animal %u: interval_s and pulse_interval_s; allowed: more than 0", i + 1);
-    problem(search, too_near(scene, &animal->track),
-            "animal %u: comes nearer to a hydrophone than 1 m, where a source level means nothing", i + 1);
+    problem(search, emitter->interval_s <= 0 || emitter->pulse_interval_s <= 0,
+            "%s %u: interval_s and pulse_interval_s; allowed: more than 0", list, i + 1);
+    problem(search, kind->reach == REACH_SEA && too_near(scene, &emitter->track),
+            "%s %u: comes nearer to a hydrophone than 1 m, where a source level means nothing", list, i + 1);
 }
 
 static void check_sources(const struct scene *scene, struct search *search)
@@ -175,7 +197,9 @@ enum status scene_check(const struct scene *scene, uint32_t n, char out_problem[
             "duration_s; allowed: more than 0, up to 10000000");
     check_hydrophones(scene, &search);
     for (uint32_t i = 0; i < scene->n_animals; i++)
-        check_animal(scene, i, &search);
+        check_emitter(scene, &scene->animals[i], "animal", i, &search);
+    for (uint32_t i = 0; i < scene->n_emitters && i < SCENE_MAX_EMITTERS; i++)
+        check_emitter(scene, &scene->emitters[i], "emitter", i, &search);
     check_sources(scene, &search);
     return search.found ? STATUS_OUT_OF_RANGE : STATUS_OK;
 }

@@ -1,5 +1,5 @@
 /* A scene: a described stretch of sea that is simulated. Plain data; config/scenes holds some, and
- * daemon/settings/scene.c loads them.
+ * daemon/settings/scene.c loads them. What animals and emitters may give stands in kind.h.
  *
  * Places are in metres from the source's reference point at the surface: x ahead (or north), y to starboard
  * (or east), z down. Times are in seconds since the scene's first frame. Sound travels straight at one speed,
@@ -17,6 +17,8 @@
 #include <stdint.h>
 
 #define SCENE_MAX_ANIMALS 32
+#define SCENE_MAX_EMITTERS 32
+#define SCENE_MAX_SETTINGS 4
 #define SCENE_MAX_MEMBERS 16
 #define SCENE_MAX_HAMMERS 4
 #define SCENE_MAX_STEPS 16
@@ -26,21 +28,6 @@
 #define SCENE_MAX_LINES 16
 #define SCENE_MAX_PULSES 256
 #define SCENE_TEXT_SIZE 256
-
-/* What an animal utters; the recipes stand in recipe.c. */
-enum scene_voice {
-    VOICE_TONE, /* a steady tone for measuring: no animal */
-    VOICE_HUMPBACK_SONG,
-    VOICE_FIN_PULSE,
-    VOICE_BLUE_MOAN,
-    VOICE_RIGHT_UPCALL,
-    VOICE_DELPHINID_WHISTLE,
-    VOICE_DELPHINID_CLICKS,
-    VOICE_SPERM_CLICKS,
-    VOICE_BEAKED_CLICKS,
-    VOICE_PORPOISE_CLICKS,
-    VOICE_COUNT
-};
 
 struct scene_place {
     double x_m, y_m, z_m;
@@ -53,20 +40,23 @@ struct scene_track {
     double speed_m_s;
 };
 
-struct scene_animal {
-    enum scene_voice voice;
+struct scene_kind; /* what it gives; see kind.h */
+
+/* An animal, or another source of sounds that one kind makes. NAN and 0 leave a value to the kind. */
+struct scene_emitter {
+    const struct scene_kind *kind;
     struct scene_track track;
     uint32_t members; /* so many of them, each for itself, within spread_m of the track */
     double spread_m;
-    double start_s, end_s; /* the first call begins at start_s, none after end_s */
-    /* dB re 1 uPa m towards the hydrophones: of a tone its mean-square level over the call, of pulses the
-     * zero-to-peak level of the strongest. NAN: the recipe's. */
+    double start_s, end_s; /* the first sound begins at start_s, none after end_s */
+    /* Towards the hydrophones, dB re 1 uPa m: of a tone its mean-square level over the call, of pulses the
+     * zero-to-peak level of the strongest; dB re 1 uPa2 m2 s where the kind states energy; dB re 1 uPa at the
+     * hydrophone where it has no place. NAN: the kind's. */
     double source_level_db;
-    double interval_s;       /* from one call's start to the next, within 20 %; NAN: the recipe's */
-    double pulse_interval_s; /* of a train, within 4 %; NAN: the recipe's */
-    uint32_t pulses;         /* of a train; 0: the recipe's */
-    double frequency_hz;     /* of VOICE_TONE */
-    double length_s;         /* of VOICE_TONE */
+    double interval_s;       /* from one start to the next; of animals within 20 %; NAN: the kind's */
+    double pulse_interval_s; /* of a train, within 4 %; NAN: the kind's */
+    uint32_t pulses;         /* of a train; 0: the kind's */
+    double settings[SCENE_MAX_SETTINGS]; /* what the kind alone has, in its order */
 };
 
 struct scene_step {
@@ -133,9 +123,10 @@ struct scene {
     double duration_s;
     double rate_hz;
     struct scene_sea sea;
-    uint32_t n_hydrophones, n_animals, n_hammers, n_airguns, n_echosounders, n_ships;
+    uint32_t n_hydrophones, n_animals, n_emitters, n_hammers, n_airguns, n_echosounders, n_ships;
     struct scene_hydrophone hydrophones[FLOW_MAX_CHANNELS];
-    struct scene_animal animals[SCENE_MAX_ANIMALS];
+    struct scene_emitter animals[SCENE_MAX_ANIMALS];
+    struct scene_emitter emitters[SCENE_MAX_EMITTERS]; /* what is easily taken for an animal, and is none */
     struct scene_hammer hammers[SCENE_MAX_HAMMERS];
     struct scene_airguns airguns[SCENE_MAX_AIRGUNS];
     struct scene_echosounder echosounders[SCENE_MAX_ECHOSOUNDERS];
@@ -145,8 +136,11 @@ struct scene {
 
 /* An empty scene: no source, a temperate sea in a light wind, no hydrophone yet. */
 void scene_reset(struct scene *scene);
-/* An animal, hammer ... as the recipes have it, at the origin, for the whole scene. */
-struct scene_animal scene_animal_of(enum scene_voice voice);
+/* An animal, emitter, hammer ... as the recipes have it, for the whole scene. A name that no kind has leaves
+ * the kind NULL, which scene_check refuses. */
+struct scene_emitter scene_emitter_of(const char *kind);
+/* One of the kind's own settings by its key. STATUS_NOT_FOUND; STATUS_OUT_OF_RANGE. */
+enum status scene_emitter_set(struct scene_emitter *emitter, const char *key, double value);
 struct scene_hammer scene_hammer_of(void);
 
 /* The n-th thing that makes the scene impossible to render (n = 0, 1, 2 ...): STATUS_OUT_OF_RANGE and a
@@ -155,9 +149,5 @@ enum status scene_check(const struct scene *scene, uint32_t n, char out_problem[
 
 /* Where a track is at a time. */
 struct scene_place scene_track_at(const struct scene_track *track, double time_s);
-
-/* "humpback song", "porpoise clicks" ...; never NULL. */
-const char *scene_voice_text(enum scene_voice voice);
-enum group scene_voice_group(enum scene_voice voice);
 
 #endif

@@ -2,6 +2,7 @@
  */
 #include "scene/schedule.h"
 #include "base/units.h"
+#include "scene/kind.h"
 #include "scene/recipe.h"
 #include <math.h>
 
@@ -15,10 +16,15 @@ static uint64_t mix(uint64_t a, uint64_t b)
     return x ^ (x >> 31);
 }
 
+double emission_sound_s(const struct emission *emission)
+{
+    return fmax(emission->sound.length_s, emission->tail.length_s);
+}
+
 double emission_length_s(const struct emission *emission)
 {
     double last_s = emission->n_pulses > 0 ? emission->pulse_s[emission->n_pulses - 1] : 0;
-    return last_s + emission->sound.length_s;
+    return last_s + emission_sound_s(emission);
 }
 
 uint32_t schedule_count(const struct scene *scene)
@@ -27,12 +33,15 @@ uint32_t schedule_count(const struct scene *scene)
         scene->n_hammers + scene->n_airguns + scene->n_echosounders + (scene->shrimp.snaps_per_s > 0);
     for (uint32_t i = 0; i < scene->n_animals; i++)
         n += scene->animals[i].members;
+    for (uint32_t i = 0; i < scene->n_emitters; i++)
+        n += scene->emitters[i].members;
     return n;
 }
 
-static const struct scene_animal *animal_of(const struct schedule *schedule)
+static const struct scene_emitter *emitter_of(const struct schedule *schedule)
 {
-    return &schedule->scene->animals[schedule->source];
+    return schedule->kind == EMISSION_CALL ? &schedule->scene->animals[schedule->source]
+                                           : &schedule->scene->emitters[schedule->source];
 }
 
 static struct schedule *list_one(const struct scene *scene, enum emission_kind kind, uint32_t source,
@@ -45,15 +54,16 @@ static struct schedule *list_one(const struct scene *scene, enum emission_kind k
     return out + 1;
 }
 
-/* Members swim in company, each at its own place. */
-static struct scene_track member_track(const struct scene *scene, uint32_t animal, uint32_t member)
+/* Members keep company, each at its own place. */
+static struct scene_track member_track(const struct scene *scene, const struct scene_emitter *emitter,
+                                       uint64_t salt, uint32_t source, uint32_t member)
 {
-    struct scene_track track = scene->animals[animal].track;
+    struct scene_track track = emitter->track;
     if (member > 0) {
         struct random random;
-        random_reset(&random, mix(mix(scene->seed, 0x7472), (uint64_t)animal << 16 | member));
-        track.at_start.x_m += scene->animals[animal].spread_m * random_between(&random, -1, 1);
-        track.at_start.y_m += scene->animals[animal].spread_m * random_between(&random, -1, 1);
+        random_reset(&random, mix(mix(scene->seed, salt), (uint64_t)source << 16 | member));
+        track.at_start.x_m += emitter->spread_m * random_between(&random, -1, 1);
+        track.at_start.y_m += emitter->spread_m * random_between(&random, -1, 1);
     }
     return track;
 }
@@ -62,7 +72,12 @@ void schedule_list(const struct scene *scene, struct schedule *out)
 {
     for (uint32_t i = 0; i < scene->n_animals; i++)
         for (uint32_t m = 0; m < scene->animals[i].members; m++)
-            out = list_one(scene, EMISSION_CALL, i, m, member_track(scene, i, m), out);
+            out = list_one(scene, EMISSION_CALL, i, m, member_track(scene, &scene->animals[i], 0x7472, i, m),
+                           out);
+    for (uint32_t i = 0; i < scene->n_emitters; i++)
+        for (uint32_t m = 0; m < scene->emitters[i].members; m++)
+            out = list_one(scene, EMISSION_SOUND, i, m,
+                           member_track(scene, &scene->emitters[i], 0x656d, i, m), out);
     for (uint32_t i = 0; i < scene->n_hammers; i++)
         out = list_one(scene, EMISSION_BLOW, i, 0, scene->hammers[i].track, out);
     for (uint32_t i = 0; i < scene->n_airguns; i++)
@@ -85,7 +100,8 @@ void schedule_reset(struct schedule *schedule)
     schedule->next_s = 0;
     switch (schedule->kind) {
     case EMISSION_CALL:
-        schedule->next_s = animal_of(schedule)->start_s;
+    case EMISSION_SOUND:
+        schedule->next_s = emitter_of(schedule)->start_s;
         if (schedule->member > 0) /* the others fall in one by one */
             schedule->next_s += random_between(&random, 0, 2 * schedule_min_spacing_s(schedule) + 2);
         schedule->n_types = 3 + (uint32_t)(random_bits(&random) % 6);
@@ -121,46 +137,35 @@ static uint32_t next_unit(struct schedule *schedule, struct random *random)
     return schedule->phrase[schedule->in_phrase++];
 }
 
-/* From one call's start to the next. */
-static double call_spacing_s(struct schedule *schedule, double length_s, struct random *random)
+/* From one start to the next. */
+static double spacing_s(struct schedule *schedule, struct kind_order *order, double length_s,
+                        struct random *random)
 {
-    const struct scene_animal *animal = animal_of(schedule);
-    bool rests = --schedule->until_rest == 0;
-    if (rests)
+    const struct scene_kind *kind = order->emitter->kind;
+    if (kind->lasts)
+        return kind->min_spacing_s;
+    order->rests = --schedule->until_rest == 0;
+    if (order->rests)
         schedule->until_rest = 40 + (uint32_t)(random_bits(random) % 20);
-    if (isfinite(animal->interval_s))
-        return animal->interval_s * random_between(random, 0.8, 1.2);
-    switch (animal->voice) {
-    case VOICE_HUMPBACK_SONG:
-        return fmax(random_between(random, 1.5, 4.0), length_s + 0.4);
-    case VOICE_FIN_PULSE: /* Watkins et al. 1987: rests of 1 to 20 min each quarter of an hour */
-        return 15 + 0.6 * random_normal(random) + (rests ? random_between(random, 60, 150) : 0);
-    case VOICE_BLUE_MOAN:
-        return 60 + 5 * random_normal(random);
-    case VOICE_RIGHT_UPCALL:
-        return 3 + 9 * random_exponential(random);
-    case VOICE_DELPHINID_WHISTLE:
-        return length_s + 0.2 + 1.2 * random_exponential(random);
-    case VOICE_SPERM_CLICKS:
-        return length_s + random_between(random, 10, 60);
-    case VOICE_BEAKED_CLICKS:
-        return length_s + 8 + 10 * random_exponential(random);
-    case VOICE_TONE:
-        return length_s + 1;
-    default: /* trains of delphinids and porpoises */
-        return length_s + 0.4 + 2.5 * random_exponential(random);
-    }
+    if (isfinite(order->emitter->interval_s))
+        return order->emitter->interval_s * (kind->is_machine ? 1 : random_between(random, 0.8, 1.2));
+    return kind->spacing_s ? kind->spacing_s(order, length_s, random) : kind->min_spacing_s;
 }
 
-static bool next_call(struct schedule *schedule, struct random *random, struct emission *out)
+static bool next_sound(struct schedule *schedule, struct random *random, struct emission *out)
 {
-    const struct scene_animal *animal = animal_of(schedule);
-    if (schedule->next_s >= animal->end_s)
+    const struct scene_emitter *emitter = emitter_of(schedule);
+    if (schedule->next_s >= emitter->end_s)
         return false;
-    uint32_t unit = animal->voice == VOICE_HUMPBACK_SONG ? next_unit(schedule, random) : 0;
-    recipe_call(animal, schedule->scene->rate_hz, random, schedule->identity, unit, out);
-    double spacing_s = call_spacing_s(schedule, emission_length_s(out), random);
-    schedule->next_s += fmax(spacing_s, schedule_min_spacing_s(schedule));
+    struct kind_order order = {.emitter = emitter,
+                               .rate_hz = schedule->scene->rate_hz,
+                               .repertoire = schedule->identity,
+                               .number = out->number,
+                               .since_s = schedule->next_s - emitter->start_s};
+    order.unit = emitter->kind->is_song ? next_unit(schedule, random) : 0;
+    kind_make(&order, random, out);
+    double next_s = spacing_s(schedule, &order, emission_length_s(out), random);
+    schedule->next_s += fmax(next_s, schedule_min_spacing_s(schedule));
     return true;
 }
 
@@ -245,10 +250,13 @@ bool schedule_next(struct schedule *schedule, struct emission *out)
     out->start_s = schedule->next_s;
     out->track = schedule->track;
     out->n_pulses = 0;
+    out->reach = REACH_SEA;
+    out->tail.length_s = 0;
     bool more = false;
     switch (schedule->kind) {
     case EMISSION_CALL:
-        more = next_call(schedule, &random, out);
+    case EMISSION_SOUND:
+        more = next_sound(schedule, &random, out);
         break;
     case EMISSION_BLOW:
         more = next_blow(schedule, &random, out);
@@ -273,12 +281,12 @@ double schedule_max_length_s(const struct schedule *schedule)
         return schedule->scene->echosounders[schedule->source].ping_s;
     if (schedule->kind == EMISSION_SNAP)
         return SNAP_LENGTH_S;
-    if (schedule->kind != EMISSION_CALL)
+    if (schedule->kind != EMISSION_CALL && schedule->kind != EMISSION_SOUND)
         return BLOW_LENGTH_S;
-    const struct scene_animal *animal = animal_of(schedule);
-    double length_s = recipe_facts(animal->voice)->max_length_s;
-    if (animal->voice == VOICE_TONE)
-        return animal->length_s;
+    const struct scene_emitter *animal = emitter_of(schedule);
+    double length_s = animal->kind->max_length_s;
+    if (animal->kind->length_s)
+        return animal->kind->length_s(animal);
     if (animal->pulses > 0 && isfinite(animal->pulse_interval_s))
         length_s = 0.1 + 1.2 * animal->pulses * animal->pulse_interval_s;
     else if (animal->pulses > 0 || isfinite(animal->pulse_interval_s))
@@ -291,10 +299,12 @@ double schedule_min_spacing_s(const struct schedule *schedule)
     const struct scene *scene = schedule->scene;
     double spacing_s = INFINITY;
     switch (schedule->kind) {
-    case EMISSION_CALL: {
-        const struct scene_animal *animal = animal_of(schedule);
-        return isfinite(animal->interval_s) ? 0.8 * animal->interval_s
-                                            : recipe_facts(animal->voice)->min_spacing_s;
+    case EMISSION_CALL:
+    case EMISSION_SOUND: {
+        const struct scene_emitter *emitter = emitter_of(schedule);
+        bool stated = isfinite(emitter->interval_s) && !emitter->kind->lasts;
+        return stated ? (emitter->kind->is_machine ? 1 : 0.8) * emitter->interval_s
+                      : emitter->kind->min_spacing_s;
     }
     case EMISSION_BLOW: {
         const struct scene_hammer *hammer = &scene->hammers[schedule->source];

@@ -10,9 +10,9 @@
 #include <stdbool.h>
 #include <stdint.h>
 
-/* animals * members, hammers, airguns, echosounders, shrimp */
+/* animals and emitters * members, hammers, airguns, echosounders, shrimp */
 #define SCHEDULE_MAX                                                                                         \
-    (SCENE_MAX_ANIMALS * SCENE_MAX_MEMBERS + SCENE_MAX_HAMMERS + SCENE_MAX_AIRGUNS +                         \
+    ((SCENE_MAX_ANIMALS + SCENE_MAX_EMITTERS) * SCENE_MAX_MEMBERS + SCENE_MAX_HAMMERS + SCENE_MAX_AIRGUNS +  \
      SCENE_MAX_ECHOSOUNDERS + 1)
 
 struct schedule {

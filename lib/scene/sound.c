@@ -1,6 +1,7 @@
 /* Sounds as formulas; see sound.h. Short shapes are evaluated sample by sample; damped parts by a rotation
  * that is exact at the first sample and drifts by less than 1e-10 over a tile. */
 #include "scene/sound.h"
+#include "scene/sound_noise.h"
 #include <math.h>
 #include <stdbool.h>
 
@@ -8,74 +9,16 @@
 #define GAUSS_REACH 4.5  /* standard deviations to either side: 4e-5 of the peak */
 #define GAMMA_REACH 16.0 /* widths: 3e-5 of the peak */
 #define DAMPED_REACH 9.0 /* widths: 1e-4 */
-
-void contour_cubic(struct contour *contour, const double coefficients[4], double length_s)
-{
-    *contour = (struct contour){.n_segments = 1, .length_s = length_s};
-    for (int i = 0; i < 4; i++)
-        contour->cubic[0][i] = coefficients[i];
-}
-
-void contour_through(struct contour *contour, const double *knots_hz, uint32_t n, double length_s)
-{
-    *contour = (struct contour){.n_segments = n, .length_s = length_s};
-    double cycles = 0, h = length_s / n;
-    for (uint32_t i = 0; i < n; i++) {
-        double a = knots_hz[i], b = knots_hz[i + 1];
-        double at_a = i > 0 ? (b - knots_hz[i - 1]) / 2 : b - a;
-        double at_b = i + 2 <= n ? (knots_hz[i + 2] - a) / 2 : b - a;
-        double *c = contour->cubic[i];
-        c[0] = a;
-        c[1] = at_a;
-        c[2] = 3 * (b - a) - 2 * at_a - at_b;
-        c[3] = 2 * (a - b) + at_a + at_b;
-        contour->cycles[i] = cycles;
-        cycles += h * (c[0] + c[1] / 2 + c[2] / 3 + c[3] / 4);
-    }
-}
-
-static uint32_t segment_at(const struct contour *contour, double time_s, double *x)
-{
-    double at = time_s / contour->length_s * contour->n_segments;
-    uint32_t i = at <= 0 ? 0 : (uint32_t)at;
-    if (i >= contour->n_segments)
-        i = contour->n_segments - 1;
-    *x = at - i;
-    return i;
-}
-
-double contour_hz(const struct contour *contour, double time_s)
-{
-    double x;
-    const double *c = contour->cubic[segment_at(contour, time_s, &x)];
-    return c[0] + x * (c[1] + x * (c[2] + x * c[3]));
-}
-
-double contour_cycles(const struct contour *contour, double time_s)
-{
-    double x;
-    uint32_t i = segment_at(contour, time_s, &x);
-    const double *c = contour->cubic[i];
-    double integral = x * (c[0] + x * (c[1] / 2 + x * (c[2] / 3 + x * c[3] / 4)));
-    return contour->cycles[i] + contour->length_s / contour->n_segments * integral;
-}
-
-void contour_extent(const struct contour *contour, double *low_hz, double *high_hz, double *mean_hz)
-{
-    *low_hz = *high_hz = contour_hz(contour, 0);
-    for (int i = 1; i <= 64; i++) {
-        double hz = contour_hz(contour, contour->length_s * i / 64);
-        *low_hz = fmin(*low_hz, hz);
-        *high_hz = fmax(*high_hz, hz);
-    }
-    *mean_hz = contour_cycles(contour, contour->length_s) / contour->length_s;
-}
+#define DECAY_REACH 7.0  /* time constants of noise: 1e-3 */
+#define GAP_EDGE_S 0.005
 
 double sound_part_hz(const struct sound *sound, uint32_t k)
 {
     if (sound->shape != SOUND_TONE)
         return sound->parts[k].frequency_hz;
-    return (k + 1) * contour_cycles(&sound->contour, sound->length_s) / sound->length_s;
+    double first = contour_cycles(&sound->contour, sound->origin_s);
+    double last = contour_cycles(&sound->contour, sound->origin_s + sound->length_s);
+    return (k + 1) * (last - first) / sound->length_s;
 }
 
 /* Half the width of a part's spectrum, about -10 dB. */
@@ -88,9 +31,29 @@ static double half_band_hz(const struct sound *sound, const struct sound_part *p
         return 1.1 / (TWO_PI * part->width_s);
     case SOUND_DAMPED:
         return 3.0 / (TWO_PI * part->width_s);
+    case SOUND_NOISE:
+        return 0.42 / part->width_s;
     default:
         return 0.8 / part->width_s;
     }
+}
+
+/* What chips fill; chip lengths widen it a little. */
+static void chips_band(const struct sound *sound, double *low_hz, double *high_hz)
+{
+    double sweep_hz = sound->parts[0].chirp_hz_s * sound->chip_s;
+    *low_hz = INFINITY;
+    *high_hz = 0;
+    for (uint32_t i = 0; i < sound->n_chips; i++) {
+        if (sound->chips[i] == SOUND_NO_CHIP)
+            continue;
+        double hz = sound->parts[0].frequency_hz;
+        hz += sweep_hz == 0 ? sound->chips[i] * sound->slot_hz : 0;
+        *low_hz = fmin(*low_hz, fmin(hz, hz + sweep_hz));
+        *high_hz = fmax(*high_hz, fmax(hz, hz + sweep_hz));
+    }
+    *low_hz = fmax(0, *low_hz - 0.8 / sound->chip_s);
+    *high_hz += 0.8 / sound->chip_s;
 }
 
 void sound_band(const struct sound *sound, double *low_hz, double *high_hz)
@@ -98,6 +61,10 @@ void sound_band(const struct sound *sound, double *low_hz, double *high_hz)
     if (sound->shape == SOUND_TONE) {
         double mean_hz;
         contour_extent(&sound->contour, low_hz, high_hz, &mean_hz);
+        return;
+    }
+    if (sound->shape == SOUND_CHIPS) {
+        chips_band(sound, low_hz, high_hz);
         return;
     }
     double strongest = 0;
@@ -124,6 +91,11 @@ static double part_reach_s(const struct sound *sound, const struct sound_part *p
         return GAMMA_REACH * part->width_s;
     case SOUND_DAMPED:
         return DAMPED_REACH * part->width_s;
+    case SOUND_NOISE:
+        return part->decay_s > 0 ? part->rise_s + DECAY_REACH * part->decay_s
+                                 : fmax(part->rise_s, sound->length_s - part->delay_s);
+    case SOUND_CHIPS:
+        return sound->n_chips * sound->chip_s;
     default:
         return part->width_s;
     }
@@ -138,31 +110,37 @@ void sound_measure_length(struct sound *sound)
     }
 }
 
-/* Tukey window: 1 in the middle, cosine over taper / 2 of the length at each end. */
-static double window_at(double x, double taper)
+/* What gaps leave at a time; their edges are cosines. */
+static double gap_at(const struct sound *sound, double t)
 {
-    double edge = taper / 2, from_end = x < 0.5 ? x : 1 - x;
-    if (from_end <= 0)
-        return 0;
-    return from_end >= edge ? 1 : 0.5 - 0.5 * cos(TWO_PI / 2 * from_end / edge);
+    double left = 1;
+    for (int i = 0; i < SOUND_MAX_GAPS; i++) {
+        double outside = fmax(sound->gap_s[i] - t, t - sound->gap_s[i] - sound->gap_length_s[i]);
+        if (sound->gap_length_s[i] > 0 && outside < GAP_EDGE_S)
+            left *= outside <= 0 ? 0 : 0.5 - 0.5 * cos(TWO_PI / 2 * outside / GAP_EDGE_S);
+    }
+    return left;
 }
 
 static double tone_envelope(const struct sound *sound, double t)
 {
-    double envelope = window_at(t / sound->length_s, sound->taper);
+    double envelope = sound_window_at(t / sound->length_s, sound->taper);
     if (sound->pulse_rate_hz > 0) {
         double swell = 0.5 - 0.5 * cos(TWO_PI * sound->pulse_rate_hz * t);
         envelope *= swell * swell;
     }
-    return envelope;
+    if (sound->decay_s > 0)
+        envelope *= exp(-t / sound->decay_s);
+    return envelope * sound_swell_at(sound, t + sound->origin_s) * gap_at(sound, t);
 }
 
-static void add_tone(const struct sound *sound, const double *gain, double t, double scale, float *out)
+static void add_tone(const struct sound *sound, const double *gain, double t, double scale, double phase,
+                     float *out)
 {
     double envelope = scale * tone_envelope(sound, t);
     if (envelope == 0)
         return;
-    double cycles = contour_cycles(&sound->contour, t);
+    double cycles = contour_cycles(&sound->contour, t + sound->origin_s) + phase;
     /* cos(k x) = 2 cos(x) cos((k - 1) x) - cos((k - 2) x) */
     double first = cos(TWO_PI * (cycles - floor(cycles))), before = 1, present = first, sum = 0;
     for (uint32_t k = 0; k < sound->n_parts; k++) {
@@ -172,6 +150,20 @@ static void add_tone(const struct sound *sound, const double *gain, double t, do
         present = next;
     }
     *out += (float)(envelope * sum);
+}
+
+static double chip_at(const struct sound *sound, const struct sound_part *part, double u)
+{
+    double at = floor(u / sound->chip_s), v = u - at * sound->chip_s;
+    uint8_t chip = at >= 0 && at < sound->n_chips ? sound->chips[(uint32_t)at] : SOUND_NO_CHIP;
+    if (chip == SOUND_NO_CHIP)
+        return 0;
+    double envelope = sound_window_at(v / sound->chip_s, 0.1), hz = part->frequency_hz;
+    if (part->chirp_hz_s == 0)
+        return envelope * sin(TWO_PI * (hz + chip * sound->slot_hz) * v);
+    if (chip & 1)
+        v = sound->chip_s - v; /* a sweep played backwards */
+    return envelope * sin(TWO_PI * (hz * v + 0.5 * part->chirp_hz_s * v * v));
 }
 
 static double part_at(const struct sound *sound, const struct sound_part *part, double u)
@@ -187,12 +179,15 @@ static double part_at(const struct sound *sound, const struct sound_part *part, 
     }
     case SOUND_DAMPED:
         return (1 - exp(-u / sound->rise_s)) * exp(-u / part->width_s) * sin(TWO_PI * part->frequency_hz * u);
+    case SOUND_CHIPS:
+        return chip_at(sound, part, u);
     default:
-        return window_at(u / part->width_s, 0.1) * sin(TWO_PI * part->frequency_hz * u);
+        return sound_window_at(u / part->width_s, 0.1) * sin(TWO_PI * part->frequency_hz * u);
     }
 }
 
 struct run {
+    uint64_t variant;
     double scale0, scale_slope; /* by time since the sound's start */
     double t0, dt;
 };
@@ -234,6 +229,11 @@ static void add_part(const struct sound *sound, uint32_t k, double gain, struct 
     sample_range(part->delay_s, part->delay_s + part_reach_s(sound, part), run.t0, run.dt, n, &from, &to);
     if (amplitude == 0 || from >= to)
         return;
+    if (sound->shape == SOUND_NOISE) {
+        sound_noise_add(sound, k, run.variant, gain * run.scale0, gain * run.scale_slope, run.t0, run.dt,
+                        from, to, out);
+        return;
+    }
     if (sound->shape == SOUND_DAMPED) {
         add_damped(sound, part, amplitude, run, from, to, out);
         return;
@@ -245,31 +245,64 @@ static void add_part(const struct sound *sound, uint32_t k, double gain, struct 
     }
 }
 
-void sound_add(const struct sound *sound, const double *gain, double scale0, double scale1, double t0,
-               double dt, uint32_t n, float *out)
+void sound_add(const struct sound *sound, uint64_t variant, const double *gain, double scale0, double scale1,
+               double t0, double dt, uint32_t n, float *out)
 {
-    struct run run = {scale0, (scale1 - scale0) / sound->length_s, t0, dt};
+    struct run run = {variant, scale0, (scale1 - scale0) / sound->length_s, t0, dt};
     if (sound->shape != SOUND_TONE) {
         for (uint32_t k = 0; k < sound->n_parts; k++)
             add_part(sound, k, gain[k], run, n, out);
         return;
     }
+    double phase = (double)variant * 0.6180339887498949; /* the golden ratio keeps any two apart */
     uint32_t from, to;
     sample_range(0, sound->length_s, t0, dt, n, &from, &to);
     for (uint32_t i = from; i < to; i++) {
         double t = t0 + i * dt;
-        add_tone(sound, gain, t, scale0 + run.scale_slope * t, &out[i]);
+        add_tone(sound, gain, t, scale0 + run.scale_slope * t, phase, &out[i]);
     }
 }
 
-static void scale_parts(struct sound *sound, double factor)
+void sound_scale(struct sound *sound, double factor)
 {
     for (uint32_t k = 0; k < sound->n_parts; k++)
         sound->parts[k].amplitude *= factor;
 }
 
+/* Of noise what is expected on average; where all of it lasts, while it lasts. */
+static void measure_noise(const struct sound *sound, double *mean_square, double *peak, double *exposure)
+{
+    double power = 0, strongest2 = 0, sum = 0;
+    bool lasts = true;
+    for (uint32_t k = 0; k < sound->n_parts; k++) {
+        double a2 = sound->parts[k].amplitude * sound->parts[k].amplitude;
+        power += a2;
+        sum += a2 * sound_noise_part_s(sound, k);
+        strongest2 = fmax(strongest2, a2);
+        lasts = lasts && sound->parts[k].decay_s == 0;
+    }
+    *mean_square = lasts ? power : sum / sound->length_s;
+    *peak = 3 * sqrt(strongest2);
+    *exposure = sum;
+}
+
 void sound_normalize_mean_square(struct sound *sound)
 {
+    if (sound->shape == SOUND_NOISE) {
+        double mean_square, peak, exposure;
+        measure_noise(sound, &mean_square, &peak, &exposure);
+        sound_scale(sound, 1 / sqrt(mean_square));
+        return;
+    }
+    if (sound->shape == SOUND_CHIPS) { /* while they sound; a Tukey window of 0.1 holds 1 - 5 / 8 0.1 */
+        sound_scale(sound, sqrt(2 / 0.9375) / fabs(sound->parts[0].amplitude));
+        return;
+    }
+    if (sound->shape != SOUND_TONE) {
+        sound_normalize_exposure(sound);
+        sound_scale(sound, sqrt(sound->length_s));
+        return;
+    }
     const int n = 4096;
     double envelope2 = 0, parts2 = 0;
     for (int i = 0; i < n; i++) {
@@ -278,21 +311,28 @@ void sound_normalize_mean_square(struct sound *sound)
     }
     for (uint32_t k = 0; k < sound->n_parts; k++)
         parts2 += sound->parts[k].amplitude * sound->parts[k].amplitude / 2;
-    scale_parts(sound, 1 / sqrt(envelope2 / n * parts2));
+    sound_scale(sound, 1 / sqrt(envelope2 / n * parts2));
 }
 
 /* The pulse on a grid of at least 32 points a cycle of its highest part. */
 static void measure_pulse(const struct sound *sound, double *peak, double *exposure)
 {
+    if (sound->shape == SOUND_NOISE) {
+        double mean_square;
+        measure_noise(sound, &mean_square, peak, exposure);
+        return;
+    }
     double highest_hz = 0;
     for (uint32_t k = 0; k < sound->n_parts; k++)
         highest_hz = fmax(highest_hz, sound->parts[k].frequency_hz);
     double dt = 1 / (32 * highest_hz);
-    const double ones[SOUND_MAX_PARTS] = {1, 1, 1, 1, 1, 1, 1, 1};
+    double ones[SOUND_MAX_PARTS];
+    for (uint32_t k = 0; k < SOUND_MAX_PARTS; k++)
+        ones[k] = 1;
     *peak = *exposure = 0;
     for (double t = 0; t < sound->length_s; t += 64 * dt) {
         float values[64] = {0};
-        sound_add(sound, ones, 1, 1, t, dt, 64, values);
+        sound_add(sound, 0, ones, 1, 1, t, dt, 64, values);
         for (int i = 0; i < 64; i++) {
             *peak = fmax(*peak, fabs((double)values[i]));
             *exposure += (double)values[i] * (double)values[i] * dt;
@@ -304,14 +344,14 @@ void sound_normalize_peak(struct sound *sound)
 {
     double peak, exposure;
     measure_pulse(sound, &peak, &exposure);
-    scale_parts(sound, 1 / peak);
+    sound_scale(sound, 1 / peak);
 }
 
 void sound_normalize_exposure(struct sound *sound)
 {
     double peak, exposure;
     measure_pulse(sound, &peak, &exposure);
-    scale_parts(sound, 1 / sqrt(exposure));
+    sound_scale(sound, 1 / sqrt(exposure));
 }
 
 /* The product of two Gaussians is one: the part's spectrum exp(-(f - f0)2 / 2 s2) times exp(-f2 / 2 r2). */
@@ -335,7 +375,8 @@ void sound_limit_band(struct sound *sound, double rate_hz)
             if (top_hz + 2 / (TWO_PI * part->width_s) > 0.45 * rate_hz)
                 pass_front_end(part, 0.2 * rate_hz);
             earliest_s = fmin(earliest_s, part->delay_s);
-        } else if (top_hz > 0.45 * rate_hz) {
+        } else if (sound->shape == SOUND_NOISE ? top_hz + 0.42 / part->width_s > 0.48 * rate_hz
+                                               : top_hz > 0.45 * rate_hz) {
             part->amplitude = 0;
         }
     }

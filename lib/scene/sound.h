@@ -4,35 +4,29 @@
 #ifndef SCENE_SOUND_H
 #define SCENE_SOUND_H
 
+#include "scene/contour.h"
 #include <stdint.h>
 
-#define SOUND_MAX_PARTS 8
-#define SOUND_MAX_SEGMENTS 8
-
-/* A frequency that changes smoothly: cubics on equal segments, with the phase worked out at each joint. */
-struct contour {
-    uint32_t n_segments;
-    double length_s;
-    double cubic[SOUND_MAX_SEGMENTS][4]; /* Hz, over 0..1 within the segment */
-    double cycles[SOUND_MAX_SEGMENTS];   /* phase at the segment's start */
-};
-
-/* Through n + 1 knots (Hz) at equal times, tangents as Catmull and Rom (1974) take them. n is 1..8. */
-void contour_through(struct contour *contour, const double *knots_hz, uint32_t n, double length_s);
-/* One cubic in x = t / length_s: c0 + c1 x + c2 x2 + c3 x3. */
-void contour_cubic(struct contour *contour, const double coefficients[4], double length_s);
-double contour_hz(const struct contour *contour, double time_s);
-/* Phase in cycles since the start. */
-double contour_cycles(const struct contour *contour, double time_s);
-/* Lowest, highest and mean frequency. */
-void contour_extent(const struct contour *contour, double *low_hz, double *high_hz, double *mean_hz);
+#define SOUND_MAX_PARTS 16
+#define SOUND_MAX_CHIPS 256
+#define SOUND_NO_CHIP 255
+#define SOUND_MAX_SWELLS 2
+#define SOUND_MAX_GAPS 2
 
 enum sound_shape {
     SOUND_TONE,   /* partials k = 1, 2 .. of the contour under a cosine-tapered window */
     SOUND_GAUSS,  /* parts: a sine under a Gaussian of standard deviation width_s (Gabor), with chirp */
     SOUND_GAMMA,  /* parts: (t / width)2 exp(-t / width) cos */
     SOUND_DAMPED, /* parts: (1 - exp(-t / rise)) exp(-t / width) sin */
-    SOUND_BURST   /* parts: a sine for width_s, its ends tapered over a tenth */
+    SOUND_BURST,  /* parts: a sine for width_s, its ends tapered over a tenth */
+    /* Parts: Gaussian noise about frequency_hz, the power's density going as sinc8((f - frequency) width_s),
+     * which is -10 dB at 0.42 / width_s to either side; each part rises by a squared sine over rise_s and
+     * then decays as exp(-t / decay_s) (0: it lasts). Its mean square is amplitude2 while it lasts. */
+    SOUND_NOISE,
+    /* Rows of short tones of equal length (chips), each with its ends tapered over a tenth: chip c sounds at
+     * frequency_hz + c slot_hz of part 0, SOUND_NO_CHIP is silent. With a chirp_hz_s each is a sweep from
+     * frequency_hz, or with an odd c backwards to it. */
+    SOUND_CHIPS
 };
 
 struct sound_part {
@@ -41,6 +35,7 @@ struct sound_part {
     double delay_s;      /* of a pulse's part after the pulse's start */
     double width_s;
     double chirp_hz_s;
+    double rise_s, decay_s; /* of noise */
 };
 
 struct sound {
@@ -49,9 +44,21 @@ struct sound {
     uint32_t n_parts;
     struct sound_part parts[SOUND_MAX_PARTS];
     struct contour contour; /* of a tone */
-    double taper;           /* of a tone: share of its length that is tapered (Tukey); 1 is a Hann window */
-    double pulse_rate_hz;   /* of a tone: amplitude modulation, as in a grunt; 0 none */
-    double rise_s;          /* of damped parts */
+    double taper; /* of a tone, noise: share of its length that is tapered (Tukey); 1: a Hann window */
+    double pulse_rate_hz; /* of a tone: amplitude modulation, as in a grunt; 0 none */
+    double rise_s;        /* of damped parts */
+    double decay_s;       /* of a tone: exp(-t / decay) from its start; 0: none */
+    /* Of a tone, noise: times 1 + depth cos(2 pi hz t). */
+    double swell_hz[SOUND_MAX_SWELLS], swell_depth[SOUND_MAX_SWELLS];
+    double gap_s[SOUND_MAX_GAPS],
+        gap_length_s[SOUND_MAX_GAPS]; /* of a tone: silences within; length 0: none */
+    /* What lasts is made of pieces that overlap by their tapers; phase, noise and swells go on across them,
+     * counted from origin_s before this piece's start. */
+    double origin_s;
+    uint64_t seed; /* of noise */
+    double chip_s, slot_hz;
+    uint32_t n_chips;
+    uint8_t chips[SOUND_MAX_CHIPS];
 };
 
 /* Frequency at which part k is absorbed. */
@@ -59,22 +66,25 @@ double sound_part_hz(const struct sound *sound, uint32_t k);
 /* The band it fills, about -10 dB. */
 void sound_band(const struct sound *sound, double *low_hz, double *high_hz);
 
-/* Sets length_s of a pulse from its parts. */
+/* Sets length_s of a pulse, of noise or chips from its parts. */
 void sound_measure_length(struct sound *sound);
 /* Scale the parts so that a tone's mean square over its length is 1, a pulse's peak is 1, a pulse's exposure
- * is 1 s (for blows, whose source is stated as energy). */
+ * is 1 s (for blows, whose source is stated as energy); of noise, by what is expected on average (its peak
+ * taken as 3 times its strongest rms). */
 void sound_normalize_mean_square(struct sound *sound);
 void sound_normalize_peak(struct sound *sound);
 void sound_normalize_exposure(struct sound *sound);
+void sound_scale(struct sound *sound, double factor);
 
 /* A recorder's front end: parts of Gaussian shape that reach above the band of a sampling rate pass through a
  * Gaussian low-pass (standard deviation 0.2 of the rate), which leaves them Gaussian; other parts whose
- * frequency is above 0.45 of the rate are silenced. */
+ * frequency is above 0.45 of the rate are silenced, and noise whose band reaches 0.48. */
 void sound_limit_band(struct sound *sound, double rate_hz);
 
 /* Adds n values at times t0, t0 + dt ...; part k is multiplied by gain[k], and all by a factor that goes
- * linearly from scale0 at time 0 to scale1 at length_s. Values outside 0..length_s add nothing. */
-void sound_add(const struct sound *sound, const double *gain, double scale0, double scale1, double t0,
-               double dt, uint32_t n, float *out);
+ * linearly from scale0 at time 0 to scale1 at length_s. Values outside 0..length_s add nothing. Another
+ * variant (0: the first) is another noise of the same kind, and a tone of another phase. */
+void sound_add(const struct sound *sound, uint64_t variant, const double *gain, double scale0, double scale1,
+               double t0, double dt, uint32_t n, float *out);
 
 #endif

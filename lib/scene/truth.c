@@ -2,6 +2,7 @@
 #include "scene/truth.h"
 #include "base/text.h"
 #include "base/units.h"
+#include "scene/kind.h"
 #include "scene/path.h"
 #include "scene/schedule.h"
 #include <inttypes.h>
@@ -101,6 +102,13 @@ static void write_pulses(struct writer *writer, const struct emission *emission)
     text_append(&writer->text, "],");
 }
 
+static const struct scene_kind *kind_of(const struct scene *scene, const struct emission *emission)
+{
+    if (emission->kind == EMISSION_CALL)
+        return scene->animals[emission->source - 1].kind;
+    return emission->kind == EMISSION_SOUND ? scene->emitters[emission->source - 1].kind : NULL;
+}
+
 static void write_emission(struct writer *writer, const struct emission *emission)
 {
     double low_hz, high_hz;
@@ -109,16 +117,17 @@ static void write_emission(struct writer *writer, const struct emission *emissio
     number(writer, "source", emission->source, 0);
     number(writer, "member", emission->member, 0);
     text_format(&writer->text, "\"number\":%" PRIu64 ",", emission->number);
-    if (emission->kind == EMISSION_CALL) {
-        enum scene_voice voice = writer->scene->animals[emission->source - 1].voice;
-        text_format(&writer->text, "\"voice\":\"%s\",\"group\":\"%s\",", scene_voice_text(voice),
-                    group_text(scene_voice_group(voice)));
-    }
+    const struct scene_kind *kind = kind_of(writer->scene, emission);
+    if (kind)
+        text_format(&writer->text, "\"%s\":\"%s\",\"group\":\"%s\",\"class\":\"%s\",",
+                    emission->kind == EMISSION_CALL ? "voice" : "kind", kind->name, group_text(kind->group),
+                    kind->class);
     number(writer, "start_s", emission->start_s, 7);
     number(writer, "end_s", emission->start_s + emission_length_s(emission), 7);
     number(writer, "low_hz", low_hz, 1);
     number(writer, "high_hz", high_hz, 1);
-    bool energy = emission->kind == EMISSION_BLOW || emission->kind == EMISSION_SHOT;
+    bool energy = kind ? kind->level == LEVEL_ENERGY
+                       : emission->kind == EMISSION_BLOW || emission->kind == EMISSION_SHOT;
     number(writer, energy ? "source_energy_level_db" : "source_level_db", emission->level_db, 3);
     write_place(writer, scene_track_at(&emission->track, emission->start_s));
     write_pulses(writer, emission);
@@ -194,6 +203,7 @@ enum status truth_write(const struct scene *scene, const struct truth_sink *sink
         schedule_list(scene, schedules);
         write_head(&writer);
         write_kind(&writer, "calls", EMISSION_CALL, schedules, n);
+        write_kind(&writer, "sounds", EMISSION_SOUND, schedules, n);
         write_kind(&writer, "blows", EMISSION_BLOW, schedules, n);
         write_kind(&writer, "shots", EMISSION_SHOT, schedules, n);
         write_kind(&writer, "pings", EMISSION_PING, schedules, n);

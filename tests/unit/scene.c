@@ -30,6 +30,11 @@ static void listen_near(void)
     scene.hydrophones[0].calibration.full_scale_v = 1e6;
 }
 
+static void set(const char *key, double value)
+{
+    assert_int_equal(scene_emitter_set(&scene.animals[0], key, value), STATUS_OK);
+}
+
 static float *render_all(uint64_t first, uint32_t n)
 {
     struct render *render;
@@ -61,9 +66,9 @@ static void a_tone_has_the_level_of_the_sonar_equation(void **state)
             scene.sea.salinity = 35;
             scene.sea.depth_m = 0;
             scene.n_animals = 1;
-            scene.animals[0] = scene_animal_of(VOICE_TONE);
-            scene.animals[0].frequency_hz = tones[t].hz;
-            scene.animals[0].length_s = 4;
+            scene.animals[0] = scene_emitter_of("tone");
+            set("frequency_hz", tones[t].hz);
+            set("length_s", 4);
             scene.animals[0].end_s = 1; /* one call */
             scene.animals[0].source_level_db = 150;
             scene.animals[0].track.at_start = (struct scene_place){range_m, 0, 15};
@@ -107,7 +112,7 @@ static void a_click_has_its_peak(void **state)
     listen_near();
     scene.rate_hz = 768000;
     scene.n_animals = 1;
-    scene.animals[0] = scene_animal_of(VOICE_PORPOISE_CLICKS);
+    scene.animals[0] = scene_emitter_of("porpoise clicks");
     scene.animals[0].source_level_db = 170;
     scene.animals[0].pulses = 9; /* the strongest in the middle */
     scene.animals[0].pulse_interval_s = 0.05;
@@ -126,9 +131,9 @@ static void delays_are_exact_to_a_fraction_of_a_sample(void **state)
 {
     (void)state;
     scene.n_animals = 1;
-    scene.animals[0] = scene_animal_of(VOICE_TONE);
-    scene.animals[0].frequency_hz = 1000;
-    scene.animals[0].length_s = 6;
+    scene.animals[0] = scene_emitter_of("tone");
+    set("frequency_hz", 1000);
+    set("length_s", 6);
     scene.animals[0].track.at_start = (struct scene_place){300, 40, 12};
     scene.n_hydrophones = 2;
     scene.hydrophones[1] = scene.hydrophones[0];
@@ -156,9 +161,9 @@ static void a_moving_source_has_doppler(void **state)
 {
     (void)state;
     scene.n_animals = 1;
-    scene.animals[0] = scene_animal_of(VOICE_TONE);
-    scene.animals[0].frequency_hz = 1000;
-    scene.animals[0].length_s = 9;
+    scene.animals[0] = scene_emitter_of("tone");
+    set("frequency_hz", 1000);
+    set("length_s", 9);
     scene.animals[0].track =
         (struct scene_track){.at_start = {600, 0, 15}, .course_deg = 180, .speed_m_s = 8};
     struct path_sea sea = path_sea_of(&scene);
@@ -187,9 +192,9 @@ static void the_surface_makes_a_lloyd_mirror(void **state)
     (void)state;
     scene.sea.surface_reflection = 1;
     scene.n_animals = 1;
-    scene.animals[0] = scene_animal_of(VOICE_TONE);
-    scene.animals[0].frequency_hz = 500;
-    scene.animals[0].length_s = 6;
+    scene.animals[0] = scene_emitter_of("tone");
+    set("frequency_hz", 500);
+    set("length_s", 6);
     scene.animals[0].source_level_db = 160;
     scene.animals[0].track.at_start = (struct scene_place){200, 0, 7};
     struct path_sea sea = path_sea_of(&scene);
@@ -281,10 +286,10 @@ static void fill(void)
     scene.hydrophones[1] = scene.hydrophones[0];
     scene.hydrophones[1].place.y_m = 30;
     scene.n_animals = 4;
-    static const enum scene_voice voices[] = {VOICE_HUMPBACK_SONG, VOICE_DELPHINID_WHISTLE,
-                                              VOICE_SPERM_CLICKS, VOICE_FIN_PULSE};
+    static const char *const voices[] = {"humpback song", "delphinid whistle", "sperm whale clicks",
+                                         "fin whale pulse"};
     for (int i = 0; i < 4; i++) {
-        scene.animals[i] = scene_animal_of(voices[i]);
+        scene.animals[i] = scene_emitter_of(voices[i]);
         scene.animals[i].track.speed_m_s = 2;
         scene.animals[i].members = i == 1 ? 3 : 1;
         scene.animals[i].start_s = i;
@@ -404,14 +409,14 @@ static void rhythms(void **state)
     scene.rate_hz = 384000;
     scene.duration_s = 600;
     static const struct {
-        enum scene_voice voice;
+        const char *voice;
         double low_s, high_s, jitter_low, jitter_high;
-    } wants[] = {{VOICE_PORPOISE_CLICKS, 0.03, 0.2, 0.01, 0.08},
-                 {VOICE_DELPHINID_CLICKS, 0.01, 0.2, 0.05, 0.3},
-                 {VOICE_SPERM_CLICKS, 0.45, 1.0, 0.02, 0.08}};
+    } wants[] = {{"porpoise clicks", 0.03, 0.2, 0.01, 0.08},
+                 {"delphinid clicks", 0.01, 0.2, 0.05, 0.3},
+                 {"sperm whale clicks", 0.45, 1.0, 0.02, 0.08}};
     for (int v = 0; v < 3; v++) {
         scene.n_animals = 1;
-        scene.animals[0] = scene_animal_of(wants[v].voice);
+        scene.animals[0] = scene_emitter_of(wants[v].voice);
         struct schedule schedule;
         static struct emission call;
         schedule_list(&scene, &schedule);
@@ -427,8 +432,7 @@ static void rhythms(void **state)
             }
         }
         double jitter = sqrt(sum2 / n);
-        print_message("# figure %s: %d intervals, sd of ln(ratio) %.3f\n", scene_voice_text(wants[v].voice),
-                      n, jitter);
+        print_message("# figure %s: %d intervals, sd of ln(ratio) %.3f\n", wants[v].voice, n, jitter);
         assert_true(n > 100 && jitter > wants[v].jitter_low && jitter < wants[v].jitter_high);
     }
 }
@@ -441,7 +445,7 @@ static void impossible_scenes_are_refused(void **state)
     fill();
     assert_int_equal(scene_check(&scene, 0, problem), STATUS_OK);
     scene.n_animals = 5;
-    scene.animals[4] = scene_animal_of(VOICE_PORPOISE_CLICKS); /* not at 48 kHz */
+    scene.animals[4] = scene_emitter_of("porpoise clicks"); /* not at 48 kHz */
     scene.animals[0].track =
         (struct scene_track){.at_start = {100, 0, 15}, .course_deg = 180, .speed_m_s = 5};
     scene.hydrophones[1].calibration.known = false;
@@ -454,7 +458,7 @@ static void impossible_scenes_are_refused(void **state)
     assert_int_equal(render_create(&scene, &render), STATUS_BAD_ARGUMENT);
     fresh(NULL);
     scene.n_animals = 1; /* 20 clicks a second from 100 km away: more than 512 on their way */
-    scene.animals[0] = scene_animal_of(VOICE_TONE);
+    scene.animals[0] = scene_emitter_of("tone");
     scene.animals[0].interval_s = 0.05;
     scene.animals[0].track.at_start.x_m = 100000;
     assert_int_equal(render_create(&scene, &render), STATUS_BAD_ARGUMENT);
