@@ -36,11 +36,19 @@ function drawCurve(state) {
   image.append(svg("text", { class: "tick", x: width - 8, y: HEIGHT - 4, "text-anchor": "end" }, utc(last) + " UTC"));
 }
 
+/** By what levels are moved to 750 m: fitted to the job's own blows, or set by people (a standard deviation of it). */
+function law(source) {
+  if (source.n_db === null) return source.model;
+  if (!source.fitted) return `N ${db(source.n_db)} ± ${db((source.n_high_db - source.n_low_db) / 2 / 1.6449)} (standard deviation), set`;
+  return `N ${db(source.n_db)} (${db(source.n_low_db)} to ${db(source.n_high_db)}, 90 %), fitted on ${Math.round(source.range_low_m).toLocaleString("en")} to ${Math.round(source.range_high_m).toLocaleString("en")} m`;
+}
+
 function drawNumbers(state) {
-  keyed($("numbers"), state.sources, (source) => source.stream, () => el("li"), (node, source) => setText(node,
+  keyed($("numbers"), state.sources, (source) => source.stream + "." + source.channel, () => el("li"), (node, source) => setText(node,
+    (state.sources.length > 1 ? `Stream ${source.stream}, channel ${source.channel}. ` : "") +
     `Received: median SEL ${db(source.sel_db)}, highest peak ${db(source.peak_db)}, ${source.n_impulses} impulses` +
     (source.range_m === null ? ", range unknown." : ` at ${metres(source.range_m)}.`) +
-    (source.at_750_m_db === null ? "" : ` At 750 m: SEL ${db(source.at_750_m_db)} (${db(source.at_750_m_low_db)} to ${db(source.at_750_m_high_db)}, 90 %; ${source.model}, N ${db(source.n_db)}).`) +
+    (source.at_750_m_db === null ? "" : ` At 750 m: SEL ${db(source.at_750_m_db)} (${db(source.at_750_m_low_db)} to ${db(source.at_750_m_high_db)}, 90 %). ${law(source)}.`) +
     (source.back_db === null ? ` Source level: none${source.reason ? ", " + source.reason : ""}.` : ` Energy source level: ${db(source.back_db)}.`) +
     (source.quieting_on ? " Quieting is on" + (source.insertion_db === null ? "." : `: it takes off ${db(source.insertion_db)} (${db(source.insertion_low_db)} to ${db(source.insertion_high_db)}) dB.`) : "")));
 }

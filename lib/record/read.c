@@ -184,7 +184,7 @@ static void read_impulse(struct reading *reading, struct impulse *impulse)
     impulse->clipped = reading_bool(reading, "clipped", true);
     impulse->overlapped = reading_bool(reading, "overlapped", true);
     impulse->weak = reading_bool(reading, "weak", true);
-    impulse->beside = reading_bool(reading, "beside", false); /* not in ledgers of format 1 */
+    impulse->beside = reading_bool(reading, "beside", false); /* not in ledgers of formats 1 and 2 */
     impulse->whose = (enum impulse_whose)read_word(reading, "whose", IMPULSE_UNKNOWN + 1, whose_word);
     reading_text(reading, "job", true, impulse->job, sizeof impulse->job);
 }

@@ -232,6 +232,11 @@ static void a_changed_schema_is_found(void **state)
     assert_true(says("verify", "the trigger .hide. does not belong"));
     tamper("index", "DROP INDEX entry_id");
     assert_int_equal(verify("index"), 1);
+    tamper("older", "PRAGMA user_version=1; DROP VIEW source");
+    assert_int_equal(verify("older"), 1);
+    assert_true(says("verify", "was written by another version (format 1, this one makes"));
+    assert_false(says("verify", "source"));
+    assert_true(says("verify", "NOT good: 1 faults"));
     tamper("column", "ALTER TABLE entry ADD COLUMN remark TEXT");
     assert_int_equal(verify("column"), 1);
 }
