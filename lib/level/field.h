@@ -11,12 +11,22 @@
 #include <stdint.h>
 
 #define FIELD_MAX_SOURCES 64
+#define FIELD_CURVE_A_DECADE 12u
+#define FIELD_CURVE_N (6u * FIELD_CURVE_A_DECADE + 1u)
+
+/* A source's level against range where no one law gives it: a weighted sum over bands that fall differently.
+ * db[i] at 10^(i / FIELD_CURVE_A_DECADE) m, 1 m to 1,000 km; linear in lg range between, and beyond as at the
+ * end; never rising with range; all -INFINITY: silent. */
+struct field_curve {
+    double db[FIELD_CURVE_N];
+};
 
 struct field_source {
     double east_m, north_m; /* from any origin they share */
     double level_db;        /* measured or set, at at_m from the source; -INFINITY: silent */
     double at_m;            /* 1 for a source level; above 0 */
     struct loss loss;
+    const struct field_curve *curve; /* borrowed; taken instead of level, at_m and loss; NULL: none */
 };
 
 struct field_grid {
@@ -34,8 +44,11 @@ struct field_zone {
 };
 
 /* STATUS_OUT_OF_RANGE: no source, more than FIELD_MAX_SOURCES, a place or level that is not finite (a level
- * may be -INFINITY), an at_m not above 0 or a law that loss_check refuses. */
+ * may be -INFINITY), an at_m not above 0, a law that loss_check refuses or a curve that rises or is not
+ * finite. */
 enum status field_sources_check(const struct field_source *sources, uint32_t n);
+/* The range of a curve's i-th level, m. */
+double field_curve_range_m(uint32_t i);
 /* Level at a place, dB; -INFINITY where all are silent. The sources passed field_sources_check. */
 double field_level_db(const struct field_source *sources, uint32_t n, double east_m, double north_m);
 /* Levels of a grid, row by row from the south, each from the west: out_db[n_north * n_east].
@@ -50,5 +63,12 @@ void field_middle(const struct field_source *sources, uint32_t n, double *out_ea
  * bearing made better by golden section. Radius within 1e-6 of itself outside all sources. */
 enum status field_zone_get(const struct field_source *sources, uint32_t n, double east_m, double north_m,
                            double threshold_db, struct field_zone *out);
+
+/* How many islands the zone has: sources that reach the threshold, alone or with the others, at 1 m, less
+ * those that a straight line joins to another along which it is never missed (64 points, evenly in lg range
+ * from its ends). Writes for each source the lowest number of a source of its island, or n where it reaches
+ * nothing; out_island[n], may be NULL. The sources passed field_sources_check. */
+uint32_t field_islands(const struct field_source *sources, uint32_t n, double threshold_db,
+                       uint32_t *out_island);
 
 #endif

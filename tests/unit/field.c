@@ -6,7 +6,11 @@
 
 static struct field_source source(double east_m, double north_m, double level_db, double at_m, double n_db)
 {
-    return (struct field_source){east_m, north_m, level_db, at_m, {.law = LOSS_POWER, .n_db = n_db}};
+    return (struct field_source){.east_m = east_m,
+                                 .north_m = north_m,
+                                 .level_db = level_db,
+                                 .at_m = at_m,
+                                 .loss = {.law = LOSS_POWER, .n_db = n_db}};
 }
 
 static struct field_zone zone(const struct field_source *sources, uint32_t n, double threshold_db)
@@ -43,8 +47,10 @@ static void one_source_has_its_isopleth(void **state)
     assert_near(zone(&one, 1, 100).radius_m / 818.4926, 1, 1e-6);
     struct field_zone near = zone(&one, 1, 195);
     assert_true(near.radius_m == 0 && isnan(near.bearing_deg));
-    assert_true(
-        isinf(zone(&(struct field_source){0, 0, 400, 1, {.law = LOSS_POWER, .n_db = 10}}, 1, 60).radius_m));
+    assert_true(isinf(
+        zone(&(struct field_source){.level_db = 400, .at_m = 1, .loss = {.law = LOSS_POWER, .n_db = 10}}, 1,
+             60)
+            .radius_m));
     /* measured from a place 1,000 m west of the source the zone is 1,000 m wider, towards the east */
     struct field_zone aside;
     one = source(0, 0, 180, 10, 15);
@@ -101,6 +107,43 @@ static void a_small_far_zone_is_not_missed(void **state)
     assert_near(out.bearing_deg, 0.3 * 180 / M_PI, 0.1);
 }
 
+/* A curve of the same law has the same zone: linear in lg range, so no error but rounding. One that rises, or
+ * stops, is refused. */
+static void a_curve_is_its_law(void **state)
+{
+    (void)state;
+    struct field_curve curve;
+    for (uint32_t i = 0; i < FIELD_CURVE_N; i++)
+        curve.db[i] = 180 - 15 * log10(field_curve_range_m(i) / 10);
+    struct field_source both[] = {source(-700, 300, 180, 10, 15), {.east_m = 900, .curve = &curve}};
+    struct field_source laws[] = {both[0], source(900, 0, 180, 10, 15)};
+    for (double threshold = 130; threshold <= 190; threshold += 7.5)
+        assert_near(zone(both, 2, threshold).radius_m, zone(laws, 2, threshold).radius_m, 1e-3);
+    curve.db[20] = curve.db[19] + 1;
+    assert_int_equal(field_sources_check(both, 2), STATUS_OUT_OF_RANGE);
+    curve.db[20] = NAN;
+    assert_int_equal(field_sources_check(both, 2), STATUS_OUT_OF_RANGE);
+}
+
+/* Spherical spreading, two equal sources D apart: the line between them is lowest in its middle, where both
+ * give 2 (2 / D)^2: one island while the threshold is below 6.0206 + 3.0103 dB - 20 lg D of the level at 1 m.
+ * Nowhere reached: none. A third one that bridges the others makes one of three. */
+static void islands_part_at_the_saddle(void **state)
+{
+    (void)state;
+    struct field_source row[] = {source(0, 0, 200, 1, 20), source(1000, 0, 200, 1, 20),
+                                 source(500, 0, 200, 1, 20)};
+    uint32_t island[3];
+    double saddle = 200 - 60 + 6.0206 + 3.0103;
+    assert_int_equal(field_islands(row, 2, saddle - 0.01, island), 1);
+    assert_int_equal(island[1], 0);
+    assert_int_equal(field_islands(row, 2, saddle + 0.05, island), 2);
+    assert_int_equal(island[1], 1);
+    assert_int_equal(field_islands(row, 3, saddle + 0.05, island), 1);
+    assert_int_equal(field_islands(row, 3, 210, island), 0);
+    assert_int_equal(island[0], 3);
+}
+
 static void a_grid_is_its_points(void **state)
 {
     (void)state;
@@ -142,6 +185,8 @@ int main(void)
         cmocka_unit_test(two_sources_reach_farthest_on_their_line),
         cmocka_unit_test(a_network_is_one_source_from_afar),
         cmocka_unit_test(a_small_far_zone_is_not_missed),
+        cmocka_unit_test(a_curve_is_its_law),
+        cmocka_unit_test(islands_part_at_the_saddle),
         cmocka_unit_test(a_grid_is_its_points),
         cmocka_unit_test(bad_sources_are_refused),
     };
