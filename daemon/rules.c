@@ -76,6 +76,16 @@ static double zone_edge_m(const struct permit *permit)
     return edge_m;
 }
 
+/* How near its law takes the source for a point: a pile from its own length in the water on, an array from
+ * its extent on (common practice, no source). */
+static double inner_m(const struct source_settings *source)
+{
+    if (source->shape.form == SOURCE_LINE)
+        return fmax(source->depth_m, EXPOSURE_NEAREST_M);
+    return source->shape.form == SOURCE_ARRAY ? fmax(source->shape.aperture_m, EXPOSURE_NEAREST_M)
+                                              : EXPOSURE_NEAREST_M;
+}
+
 enum status rules_create_tally(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                struct tally **out_tally)
 {
@@ -97,7 +107,10 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
                                   .level_spread_db = site->source.level_spread_db,
                                   .scatter_db = site->source.scatter_db,
                                   .zone_edge_m = zone_edge_m(&rules->permit),
-                                  .soft_start_s = 60 * rules->permit.soft_start_min_minutes};
+                                  .soft_start_s = 60 * rules->permit.soft_start_min_minutes,
+                                  .n_others = site->source.n_others,
+                                  .others = site->source.others,
+                                  .inner_m = inner_m(&site->source)};
     for (uint32_t i = 0; i < n_streams; i++)
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
             const struct channel_settings *channel = &site->streams[i].channels[c];

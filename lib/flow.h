@@ -193,6 +193,11 @@ struct exposure_outcome {
     double left;              /* impulses like the last until the value is met at the zone's edge */
     int64_t start_ns;         /* of the window's first sound */
     bool unverified;          /* some number of the criterion is from memory */
+    /* The same of all sources that are set to work at the time, energy-summed; NAN, "" where none is set */
+    double together_m, together_low_m, together_high_m; /* farthest point that has the value, from ours */
+    char together[NOTE_NAME_SIZE];                      /* the same in words */
+    double together_middle_m, together_bearing_deg;     /* the same from the middle of them all; from ahead */
+    uint32_t islands;                                   /* parts of it that do not touch */
 };
 
 #define FLOW_MAX_REDUCTIONS 16

@@ -59,7 +59,7 @@ function drawCriteria(state) {
   keyed($("criteria").tBodies[0], rows, (e) => [e.stream, e.criteria, e.criterion].join(), () => el("tr", {}, ...Array.from({ length: 6 }, () => el("td"))), (row, e) => {
     row.classList.toggle("reached", e.reached);
     const texts = [e.criterion + (e.unverified ? " *" : ""), db(e.value_db), db(e.level_db), e.reached ? "REACHED" : db(e.value_db - e.level_db) + " below",
-      e.distance_m === null ? "–" : e.distance_m === 0 ? "nowhere" : `${metres(e.distance_m)} (${metres(e.distance_low_m ?? 0)} to ${e.distance_high_m === null ? "?" : metres(e.distance_high_m)})`,
+      (e.distance_m === null ? "–" : e.distance_m === 0 ? "nowhere" : `${metres(e.distance_m)} (${metres(e.distance_low_m ?? 0)} to ${e.distance_high_m === null ? "?" : metres(e.distance_high_m)})`) + (e.together ? `; with the other sources: ${e.together}` + (e.islands > 1 ? `, in ${e.islands} islands` : "") : ""),
       e.impulses_left === null ? "–" : e.impulses_left >= 100000 ? "over 100,000" : String(e.impulses_left)];
     texts.forEach((text, i) => setText(row.children[i], text));
   });

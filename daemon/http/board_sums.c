@@ -22,6 +22,13 @@ static void exposure(struct text *text, const struct exposure_outcome *exposure)
     json_number(text, "distance_m", exposure->distance_m, ROUND_DECIMALS_M);
     json_number(text, "distance_low_m", exposure->distance_low_m, ROUND_DECIMALS_M);
     json_number(text, "distance_high_m", exposure->distance_high_m, ROUND_DECIMALS_M);
+    json_text(text, "together", exposure->together);
+    json_number(text, "together_m", exposure->together_m, ROUND_DECIMALS_M);
+    json_number(text, "together_low_m", exposure->together_low_m, ROUND_DECIMALS_M);
+    json_number(text, "together_high_m", exposure->together_high_m, ROUND_DECIMALS_M);
+    json_number(text, "together_middle_m", exposure->together_middle_m, ROUND_DECIMALS_M);
+    json_number(text, "together_bearing_deg", exposure->together_bearing_deg, ROUND_DECIMALS_DEG);
+    json_number(text, "islands", exposure->islands, 0);
     json_number(text, "n", exposure->n, 0);
     json_flag(text, "reached", exposure->reached);
     json_number(text, "impulses_left", exposure->left, 0);

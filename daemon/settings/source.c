@@ -1,6 +1,7 @@
 /* The site's source; see source.h. */
 #include "settings/source.h"
 #include "settings/criteria.h"
+#include "settings/others.h"
 #include <stdio.h>
 #include <string.h>
 
@@ -34,6 +35,7 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     group_number(&group, "lobe_deg", READER_OPTIONAL, 0, 90, &out->shape.lobe_deg);
     out->shape.form = (enum source_form)form;
     out->sound = (enum criterion_sound)sound;
+    out->n_others = others_read(&group, out->others);
     while (group_text_at(&group, "criteria", out->n_sets, path, sizeof path)) {
         if (out->n_sets == SOURCE_MAX_SETS) {
             group_problem(&group, "criteria", "lists too many; allowed: at most %d", SOURCE_MAX_SETS);

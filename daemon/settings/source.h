@@ -7,6 +7,7 @@
 
 #include "level/criterion.h"
 #include "level/source.h"
+#include "level/together.h"
 #include "settings/reader.h"
 
 #define SOURCE_MAX_SETS 8
@@ -20,6 +21,8 @@ struct source_settings {
     double scatter_db;                       /* of one impulse about the loss law */
     unsigned n_sets;
     char sets[SOURCE_MAX_SETS][512]; /* files of criteria; none: nothing is summed */
+    uint32_t n_others;
+    struct together_other others[TOGETHER_MAX_OTHERS]; /* at work at the same time: settings/others.h */
 };
 
 /* Reads the group `source`, which may be absent; relative paths start at `folder`. Adds problems. */

@@ -1,6 +1,7 @@
 /* Bodies of what the tally says: exposure against each criterion, and the three numbers of the source. */
 #include "base/round.h"
 #include "record/body.h"
+#include <math.h>
 
 enum status body_of_exposure(const struct outcome *outcome, struct text *out)
 {
@@ -18,6 +19,7 @@ enum status body_of_exposure(const struct outcome *outcome, struct text *out)
     body_text(&body, "effect", exposure->effect);
     body_id(&body, outcome->run, outcome->stream, "exposure", outcome->counter);
     body_number(&body, "impulses_left", exposure->left, 0);
+    body_number(&body, "islands", isnan(exposure->together_m) ? (double)NAN : exposure->islands, 0);
     body_text_or_null(&body, "job", exposure->job);
     body_number(&body, "level_db", exposure->level_db, ROUND_DECIMALS_DB);
     body_number(&body, "level_pa_s", exposure->level_pa_s, ROUND_DECIMALS_PA_S);
@@ -32,6 +34,12 @@ enum status body_of_exposure(const struct outcome *outcome, struct text *out)
     body_text(&body, "reference", exposure->reference);
     body_time(&body, "start_s", exposure->start_ns);
     body_integer(&body, "stream", exposure->stream);
+    body_text_or_null(&body, "together", exposure->together);
+    body_number(&body, "together_bearing_deg", exposure->together_bearing_deg, ROUND_DECIMALS_DEG);
+    body_number(&body, "together_high_m", exposure->together_high_m, ROUND_DECIMALS_M);
+    body_number(&body, "together_low_m", exposure->together_low_m, ROUND_DECIMALS_M);
+    body_number(&body, "together_m", exposure->together_m, ROUND_DECIMALS_M);
+    body_number(&body, "together_middle_m", exposure->together_middle_m, ROUND_DECIMALS_M);
     body_bool(&body, "unverified", exposure->unverified);
     body_number(&body, "value_db", exposure->value_db, ROUND_DECIMALS_DB);
     body_number(&body, "value_pa_s", exposure->value_pa_s, ROUND_DECIMALS_PA_S);

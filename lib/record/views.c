@@ -76,7 +76,9 @@ const struct schema_object views_schema[] = {
         COLUMN("at_750_m_db") COLUMN("distance_m") COLUMN("distance_low_m") COLUMN("distance_high_m")
         COLUMN("n") COLUMN("reached") COLUMN("impulses_left") COLUMN("start_s") COLUMN("unverified")
         COLUMN("effect") COLUMN("limit_range_m") COLUMN("value_pa_s") COLUMN("level_pa_s") COLUMN("distance")
-        COLUMN("n_clipped") COLUMN("n_quiet") COLUMN("n_unweighted") COLUMN("n_without_range")),
+        COLUMN("n_clipped") COLUMN("n_quiet") COLUMN("n_unweighted") COLUMN("n_without_range")
+        COLUMN("together_m") COLUMN("together_low_m") COLUMN("together_high_m") COLUMN("together_middle_m")
+        COLUMN("together_bearing_deg") COLUMN("together") COLUMN("islands")),
     VIEW("contact",
         COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
         COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN("bearing_deg")

@@ -36,6 +36,8 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
                              setup->soft_start_s);
         status = exposure_create(&exposure, &tally->sums[i].exposure);
     }
+    if (status == STATUS_OK)
+        status = tally_together_create(setup, &exposure, &tally->together);
     if (status != STATUS_OK) {
         tally_destroy(tally);
         return status;
@@ -52,6 +54,7 @@ void tally_destroy(struct tally *tally)
     for (uint32_t i = 0; tally->sums && i < tally->setup.n_streams; i++)
         exposure_destroy(tally->sums[i].exposure);
     tally_fit_destroy(tally->fit);
+    together_destroy(tally->together);
     free(tally->sums);
     free(tally);
 }
@@ -76,11 +79,13 @@ static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
     sink->take(sink->context, &outcome);
 }
 
-/* A criterion of injury that is met beyond the zone's edge. */
+/* A criterion of injury that is met beyond the zone's edge: by ours alone, else with the others (reach; NULL
+ * where there are none). */
 static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct exposure_outcome *exposure,
-                       int64_t watch_ns, const struct outcome_sink *sink)
+                       const struct together_reach *reach, int64_t watch_ns, const struct outcome_sink *sink)
 {
     struct sums *sums = &tally->sums[i];
+    const struct criterion *criterion = &tally->setup.criteria->items[c];
     struct finding_outcome finding;
     if (!isfinite(tally->setup.zone_edge_m) || isnan(exposure->distance_m))
         return;
@@ -91,27 +96,35 @@ static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct
                                            .range_m = tally_range_m(tally, i + 1, sums->channel),
                                            .level_db = exposure->level_db,
                                            .threshold_db = exposure->value_db};
-    if (tally_zone_finding(&tally->setup.criteria->items[c], &distance, tally->job, sums->said[c].grade,
-                           &finding))
+    if (tally_zone_finding(criterion, &distance, tally->job, sums->said[c].grade, &finding))
         say_finding(tally, i, watch_ns, &finding, &sums->said[c], sink);
+    else if (reach && sums->said[c].grade < ZONE_INDICATIVE &&
+             tally_together_finding(criterion, reach, &tally->setup, tally->job, sums->said_together[c].grade,
+                                    &finding))
+        say_finding(tally, i, watch_ns, &finding, &sums->said_together[c], sink);
 }
 
 static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
 {
+    struct sums *sums = &tally->sums[i];
     for (uint32_t c = 0; c < tally->setup.criteria->n; c++) {
         struct outcome outcome = {.kind = OUTCOME_EXPOSURE, .run = tally->run, .watch_ns = watch_ns};
         struct exposure_outcome *exposure = &outcome.as.exposure;
-        if (tally_fill_exposure(tally->sums[i].exposure, &tally->setup.criteria->items[c], c,
-                                tally->setup.zone_edge_m, watch_ns, exposure) != STATUS_OK)
+        const struct criterion *criterion = &tally->setup.criteria->items[c];
+        struct together_reach reach;
+        if (tally_fill_exposure(sums->exposure, criterion, c, tally->setup.zone_edge_m, watch_ns, exposure) !=
+            STATUS_OK)
             continue;
+        bool others =
+            tally_fill_together(tally->together, sums->exposure, criterion, c, watch_ns, exposure, &reach);
         fill_place(tally, i, &exposure->stream, &exposure->channel, exposure->job);
         outcome.counter = ++tally->n_exposures;
         sink->take(sink->context, &outcome);
-        check_zone(tally, i, c, exposure, watch_ns, sink);
+        check_zone(tally, i, c, exposure, others ? &reach : NULL, watch_ns, sink);
     }
     struct finding_outcome finding;
     struct tally_said *said;
-    while ((said = tally_limits_next(&tally->sums[i].limits, tally->setup.criteria, tally->job, &finding)))
+    while ((said = tally_limits_next(&sums->limits, tally->setup.criteria, tally->job, &finding)))
         say_finding(tally, i, watch_ns, &finding, said, sink);
 }
 

@@ -17,6 +17,7 @@
 #include "level/criterion.h"
 #include "level/exposure.h"
 #include "level/source.h"
+#include "level/together.h"
 #include "sea/absorption.h"
 #include <stdint.h>
 
@@ -29,14 +30,17 @@ struct tally_setup {
     double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown */
     enum channel_role role[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS];
     struct source_shape shape;
-    double loss_n_db, loss_n_spread_db; /* N lg r; how unsure N is, one standard deviation */
-    struct absorption water;            /* of the sea: added to N lg r at each frequency */
-    double sound_speed_m_s;             /* for pairing blows (rule/blows.h); 0: unknown */
-    double level_spread_db;             /* of calibration and place */
-    double scatter_db;                  /* of one impulse about the loss law */
-    double zone_edge_m;                 /* of the permit's widest finite zone; NAN where there is none */
-    double soft_start_s;                /* the permit's least; 0: none, then there is no early warning */
-    int64_t day_start_ns;               /* watch time of any midnight where days are counted */
+    double loss_n_db, loss_n_spread_db;  /* N lg r; how unsure N is, one standard deviation */
+    struct absorption water;             /* of the sea: added to N lg r at each frequency */
+    double sound_speed_m_s;              /* for pairing blows (rule/blows.h); 0: unknown */
+    double level_spread_db;              /* of calibration and place */
+    double scatter_db;                   /* of one impulse about the loss law */
+    double zone_edge_m;                  /* of the permit's widest finite zone; NAN where there is none */
+    double soft_start_s;                 /* the permit's least; 0: none, then there is no early warning */
+    int64_t day_start_ns;                /* watch time of any midnight where days are counted */
+    uint32_t n_others;                   /* other sources at work; 0: none */
+    const struct together_other *others; /* copied */
+    double inner_m;                      /* of together_setup; read where there are others */
 };
 
 struct tally;

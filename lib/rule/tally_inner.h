@@ -13,6 +13,7 @@
 #include "rule/tally_fit.h"
 #include "rule/tally_limits.h"
 #include "rule/tally_quieting.h"
+#include "rule/tally_together.h"
 #include "rule/tally_warning.h"
 
 /* One stream's sums. */
@@ -26,8 +27,9 @@ struct sums {
     enum zone_warning warned; /* the strongest that was said in this soft start */
     struct quieting quieting; /* of the job */
     struct tally_said falling;
-    struct tally_said said[CRITERIA_MAX]; /* of each criterion against the zone, in this job */
-    uint64_t n_findings;                  /* said in this run */
+    /* Of each criterion against the zone, in this job: by ours alone, and with the others. */
+    struct tally_said said[CRITERIA_MAX], said_together[CRITERIA_MAX];
+    uint64_t n_findings; /* said in this run */
 };
 
 struct tally {
@@ -35,6 +37,7 @@ struct tally {
     struct sums *sums;     /* [n_streams] */
     struct source_sea sea; /* the law that was fitted, while there is one, before the one that was set */
     struct tally_fit *fit;
+    struct together *together; /* NULL where no other source is set */
     char job[IMPULSE_JOB_SIZE];
     int64_t job_ns; /* since when it is open, or none is */
     bool quieting_on;

@@ -25,6 +25,8 @@ void tally_set_laws(struct tally *tally)
     const struct exposure_loss loss = {.between = source_sea_between, .context = sea};
     for (uint32_t i = 0; i < tally->setup.n_streams; i++)
         (void)exposure_set_loss(tally->sums[i].exposure, &loss); /* refuses only losses that are not finite */
+    if (tally->together)
+        together_set_loss(tally->together, &loss);
 }
 
 static const struct source_law *law_for(const struct tally *tally, double low_hz, double high_hz)

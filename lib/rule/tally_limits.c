@@ -6,7 +6,6 @@
 #include <string.h>
 
 #define LIMIT_PASSED "limit passed"
-#define ZONE_TOO_SMALL "zone too small"
 
 void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria)
 {
@@ -99,7 +98,7 @@ void tally_limits_set_said(struct tally_limits *limits, const struct criteria *c
 
 bool tally_is_zone_finding(const struct criterion *criterion, const struct finding_outcome *finding)
 {
-    return is_finding(criterion, ZONE_TOO_SMALL, finding);
+    return is_finding(criterion, TALLY_ZONE_TOO_SMALL, finding);
 }
 
 struct tally_said *tally_limits_next(struct tally_limits *limits, const struct criteria *criteria,
@@ -130,7 +129,7 @@ bool tally_zone_finding(const struct criterion *criterion, const struct zone_dis
     bool hurts = criterion->effect == EFFECT_INJURY || criterion->effect == EFFECT_MORTALITY;
     if (!hurts || grade < ZONE_INDICATIVE || grade <= said)
         return false;
-    fill(criterion, ZONE_TOO_SMALL, grade, job, out);
+    fill(criterion, TALLY_ZONE_TOO_SMALL, grade, job, out);
     char met[NOTE_NAME_SIZE], least[NOTE_NAME_SIZE];
     tally_distance_text(distance->distance_m, NAN, NAN, met);
     tally_distance_text(distance->low_m, NAN, NAN, least);

@@ -9,6 +9,7 @@
 #include <stdint.h>
 
 #define TALLY_MAX_LIMITS 16
+#define TALLY_ZONE_TOO_SMALL "zone too small" /* the code of its finding */
 
 /* The strongest finding of the job so far about one thing. */
 struct tally_said {

@@ -77,6 +77,7 @@ void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
         quieting_reset(&sums->quieting);
         sums->falling = (struct tally_said){ZONE_NOTHING, ""};
         memset(sums->said, 0, sizeof sums->said);
+        memset(sums->said_together, 0, sizeof sums->said_together);
     }
 }
 
@@ -105,4 +106,6 @@ void tally_set_said(struct tally *tally, const struct outcome *outcome)
     for (uint32_t c = 0; c < tally->setup.criteria->n; c++)
         if (tally_is_zone_finding(&tally->setup.criteria->items[c], finding))
             sums->said[c] = said;
+        else if (tally_is_together_finding(&tally->setup.criteria->items[c], finding))
+            sums->said_together[c] = said;
 }

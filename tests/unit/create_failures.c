@@ -15,6 +15,7 @@
 #include "level/health.h"
 #include "level/impulses.h"
 #include "level/meter.h"
+#include "level/together.h"
 #include "listen/blocks.h"
 #include "listen/listen.h"
 #include "listen/strips.h"
@@ -204,6 +205,14 @@ CASE(exposure, exposure_create(&(struct exposure_setup){.n_criteria = criteria.n
                                                         .reference_m = 750,
                                                         .loss = {.n_db = 15}},
                                &made))
+CASE(together,
+     together_create(&(struct together_setup){.n_others = 1,
+                                              .others = &(struct together_other){.sound = SOUND_CONTINUOUS,
+                                                                                 .at_m = 1,
+                                                                                 .level_db = 180},
+                                              .loss = {.n_db = 15},
+                                              .inner_m = 1},
+                     &made))
 CASE(fit, fit_create(100, 0, &made))
 CASE(render, render_create(&scene.scene, &made))
 
@@ -212,10 +221,10 @@ CASE(render, render_create(&scene.scene, &made))
 #object, make_##object, end_##object                                                                 \
     }
 static const struct create_case cases[] = {
-    LINE(decimator),      LINE(spectrum), LINE(background), LINE(meter),    LINE(health),
-    LINE(impulse_finder), LINE(tones),    LINE(pulses),     LINE(gate),     LINE(blocks),
-    LINE(strips),         LINE(listen),   LINE(watch),      LINE(minutes),  LINE(merge),
-    LINE(watcher),        LINE(board),    LINE(render),     LINE(exposure), LINE(fit),
+    LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),   LINE(health), LINE(impulse_finder),
+    LINE(tones),     LINE(pulses),   LINE(gate),       LINE(blocks),  LINE(strips), LINE(listen),
+    LINE(watch),     LINE(minutes),  LINE(merge),      LINE(watcher), LINE(board),  LINE(render),
+    LINE(exposure),  LINE(fit),      LINE(together),
 };
 
 static void fail_each_allocation(const struct create_case *one)

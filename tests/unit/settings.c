@@ -74,6 +74,80 @@ static void all_errors_of_meaning_come_at_once(void **state)
     problems_destroy(&problems);
 }
 
+#define OTHERS_OF(text)                                                                                      \
+    "name = \"x\"; ledger = \"l\"; permit = \"p\"; calls = \"c\";\n"                                         \
+    "streams = ( { input = \"pcm\"; path = \"-\"; format = \"s16\"; rate_hz = 48000; channel_count = 1; } "  \
+    ");\n"                                                                                                   \
+    "source = { others = (\n" text " ); };\n"
+
+static void other_sources_are_read(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site;
+    write_file(OTHERS_OF(
+        "{ name = \"hammer B\"; place_m = [900.0, -50.0, 0.0]; sound = \"impulsive\"; sounds_per_s = 0.5;\n"
+        "  level_db = 170.0; at_m = 750.0; low_hz = 63.0; high_hz = 630.0; },\n"
+        "{ name = \"vessel\"; place_m = [0.0, 300.0, 0.0]; sound = \"continuous\"; level_spread_db = 5.0;\n"
+        "  decidecade_hz = [50.0, 31500.0]; decidecade_db = [180.0, 180.0]; }"));
+    assert_int_equal(site_load(path, &problems, &site), STATUS_OK);
+    assert_int_equal(problems.count, 0);
+    assert_int_equal(site.source.n_others, 2);
+    const struct together_other *hammer = &site.source.others[0], *vessel = &site.source.others[1];
+    assert_string_equal(hammer->name, "hammer B");
+    assert_near(hammer->ahead_m, 900, 0);
+    assert_near(hammer->starboard_m, -50, 0);
+    /* 63 to 630 Hz are 11 decidecades, n = -12 to -2 (IEC 61260-1, base ten): each 10 lg 11 dB less */
+    for (int n = LEVEL_FIRST_BAND; n < LEVEL_FIRST_BAND + LEVEL_MAX_BANDS; n++)
+        if (n >= -12 && n <= -2)
+            assert_near(hammer->band_db[n - LEVEL_FIRST_BAND], 170 - 10.4139, 1e-4);
+        else
+            assert_true(isinf(hammer->band_db[n - LEVEL_FIRST_BAND]));
+    assert_near(hammer->rate_per_s, 0.5, 0);
+    assert_int_equal(vessel->sound, SOUND_CONTINUOUS);
+    assert_near(vessel->at_m, 1, 0);
+    assert_near(vessel->spread_db, 5, 0);
+    assert_near(vessel->level_db, 183.0103, 1e-4);
+    assert_near(vessel->band_db[-13 - LEVEL_FIRST_BAND], 180, 0);
+    assert_near(vessel->band_db[15 - LEVEL_FIRST_BAND], 180, 0);
+    assert_non_null(strstr(site.effective.data, "source.others[0].at_m = 750\n"));
+    assert_non_null(strstr(site.effective.data, "source.others[0].level_spread_db = 3  # default\n"));
+    site_destroy(&site);
+}
+
+static void what_is_wrong_with_others_is_told(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site;
+    write_file(
+        OTHERS_OF("{ name = \"a\"; place_m = [900.0, 50.0]; sound = \"impulsive\"; level_db = 170.0; low_hz "
+                  "= 63.0; high_hz = 50.0; },\n"
+                  "{ place_m = [0.0, 0.0, 0.0]; sound = \"loud\"; level_db = 170.0; low_hz = 63.0; },\n"
+                  "{ name = \"c\"; place_m = [0.0, 0.0, 0.0]; sound = \"continuous\"; sounds_per_s = 1.0; "
+                  "decidecade_hz = [50.0, 51.0];\n"
+                  "  decidecade_db = [150.0, 150.0]; level_db = 3.0; },\n"
+                  "{ name = \"d\"; place_m = [0.0, 0.0, 0.0]; sound = \"continuous\"; decidecade_hz = "
+                  "[50.0]; levle_db = 170.0; }"));
+    assert_int_equal(site_load(path, &problems, &site), STATUS_BAD_FORMAT);
+    const char *lines = problems.lines.data;
+    assert_non_null(
+        strstr(lines, ":4: source.others[0].place_m: has 2 numbers; allowed: [ahead, starboard, down]"));
+    assert_non_null(strstr(lines, "source.others[0].sounds_per_s: is missing; an impulsive source needs it"));
+    assert_non_null(strstr(lines, ":4: source.others[0].high_hz: is 50; allowed: at least low_hz, 63"));
+    assert_non_null(strstr(lines, "source.others[1].name: is missing"));
+    assert_non_null(strstr(lines, ":5: source.others[1].sound: is \"loud\"; allowed: impulsive, continuous"));
+    assert_non_null(strstr(lines, "source.others[1].high_hz: is missing"));
+    assert_non_null(strstr(lines, ":6: source.others[2].sounds_per_s: is set for continuous sound"));
+    assert_non_null(strstr(lines, ":6: source.others[2].decidecade_hz: names the decidecade of 51 Hz twice"));
+    assert_non_null(strstr(lines, ":7: source.others[2].level_db: stands beside decidecade_db"));
+    assert_non_null(strstr(lines, ":8: source.others[3].decidecade_hz: has 1 numbers and its counterpart 0"));
+    assert_non_null(
+        strstr(lines, ":8: source.others[3].levle_db: is not a known key; did you mean \"level_db\"?"));
+    site_destroy(&site);
+    problems_destroy(&problems);
+}
+
 static void of_syntax_the_first_error_is_told(void **state)
 {
     (void)state;
@@ -126,6 +200,8 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(good_settings_are_read),
         cmocka_unit_test(all_errors_of_meaning_come_at_once),
+        cmocka_unit_test(other_sources_are_read),
+        cmocka_unit_test(what_is_wrong_with_others_is_told),
         cmocka_unit_test(of_syntax_the_first_error_is_told),
         cmocka_unit_test(timed_notes_go_through_the_notes_door),
     };

@@ -51,6 +51,9 @@ static const struct exposure_outcome *find(const struct said *said, const char *
     return NULL;
 }
 
+static const struct together_other *others; /* of the next tally */
+static uint32_t n_others;
+
 static struct tally *make_tally(double range_m)
 {
     struct tally_setup setup = {.criteria = &criteria,
@@ -61,7 +64,10 @@ static struct tally *make_tally(double range_m)
                                 .loss_n_spread_db = 1,
                                 .level_spread_db = 1,
                                 .zone_edge_m = 500,
-                                .soft_start_s = 1200};
+                                .soft_start_s = 1200,
+                                .n_others = n_others,
+                                .others = others,
+                                .inner_m = 20};
     struct tally *tally = NULL;
     setup.water = absorption_of(10, 35, 10, 8);
     setup.range_m[0][0] = range_m;
@@ -484,6 +490,80 @@ static void a_soft_start_warns_before_the_limit(void **state)
     criteria = whales;
 }
 
+/* A second hammer at the same place, as loud and as often: 3.0103 dB more, so (N lg r with little absorption
+ * at 100 Hz) 10^(3.0103 / 15) times as far. Alone the criterion is met inside the zone of 500 m: its LF value
+ * of 183 dB is met at r where 10 lg(blows) + SEL - 5.6454 - 15 lg(r / 750) = 183. With the other its lower
+ * bound is beyond: a finding, indicative, that says so, and once. 5 km away it is an island of its own: no
+ * finding. */
+static void the_others_count_with_ours(void **state)
+{
+    (void)state;
+    static struct together_other hammer = {.sound = SOUND_IMPULSIVE, .at_m = 750, .rate_per_s = 1};
+    const double sel_db = 157.8; /* met at 415 m alone, 659 m with the other */
+    hammer.level_db = sel_db;
+    for (int b = 0; b < LEVEL_MAX_BANDS; b++)
+        hammer.band_db[b] = b == 10 ? sel_db : -INFINITY;
+    for (int far = 0; far <= 1; far++) {
+        struct said said = {0};
+        hammer.ahead_m = far ? -5000 : 0;
+        others = &hammer;
+        n_others = 1;
+        struct tally *tally = make_tally(750);
+        n_others = 0;
+        open_job(tally, &said, TIME_NS_PER_S);
+        for (int i = 0; i < 500; i++)
+            give_blow(tally, &said, (int64_t)(10 + i) * TIME_NS_PER_S, sel_db, IMPULSE_OURS);
+        const struct outcome_sink sink = {take, &said};
+        tally_finish(tally, 510 * TIME_NS_PER_S, &sink);
+        const struct exposure_outcome *lf = find(&said, "LF injury, impulsive, SEL");
+        double alone_m = 750 * pow(10, (10 * log10(500) + sel_db - 5.6454 - 183) / 15);
+        assert_near(lf->distance_m / alone_m, 1, 2e-3);
+        if (far) {
+            assert_int_equal(lf->islands, 2);
+            assert_near(lf->together_m - 5000, alone_m, 0.1 * alone_m); /* and what ours adds there */
+            assert_near(lf->together_middle_m - 2500, alone_m, 0.1 * alone_m);
+        } else {
+            printf(
+                "# figure alone %.1f m, with a second hammer %.1f m (%.1f to %.1f), by closed form %.1f m\n",
+                lf->distance_m, lf->together_m, lf->together_low_m, lf->together_high_m,
+                alone_m * pow(2, 10.0 / 15));
+            assert_near(lf->together_m / (alone_m * pow(2, 10.0 / 15)), 1, 2e-3);
+            assert_int_equal(lf->islands, 1);
+        }
+        assert_int_equal(said.n_findings, far ? 0 : 1);
+        if (!far) {
+            assert_string_equal(said.findings[0].code, "zone too small with others");
+            assert_string_equal(said.findings[0].grade, "indicative");
+            assert_non_null(strstr(said.findings[0].detail, "with 1 other source, of set levels"));
+            /* said before a restart, it is not said again */
+            struct said again = {0};
+            const struct outcome_sink again_sink = {take, &again};
+            struct outcome finding = {.kind = OUTCOME_FINDING, .run = 1, .stream = 1, .counter = 1};
+            finding.as.finding = said.findings[0];
+            n_others = 1;
+            struct tally *second = make_tally(750);
+            n_others = 0;
+            open_job(second, &again, TIME_NS_PER_S);
+            tally_set_said(second, &finding);
+            for (int i = 0; i < 500; i++)
+                give_blow(second, &again, (int64_t)(10 + i) * TIME_NS_PER_S, sel_db, IMPULSE_OURS);
+            tally_finish(second, 510 * TIME_NS_PER_S, &again_sink);
+            assert_int_equal(again.n_findings, 0);
+            tally_destroy(second);
+        }
+        tally_destroy(tally);
+    }
+    struct said said = {0};
+    struct tally *tally = make_tally(750); /* without others there is nothing of them */
+    open_job(tally, &said, TIME_NS_PER_S);
+    give_blow(tally, &said, 2 * TIME_NS_PER_S, sel_db, IMPULSE_OURS);
+    const struct outcome_sink sink = {take, &said};
+    tally_finish(tally, 3 * TIME_NS_PER_S, &sink);
+    assert_true(isnan(find(&said, "LF injury, impulsive, SEL")->together_m));
+    assert_string_equal(find(&said, "LF injury, impulsive, SEL")->together, "");
+    tally_destroy(tally);
+}
+
 int main(void)
 {
     struct problems problems = {0};
@@ -497,6 +577,7 @@ int main(void)
         cmocka_unit_test(no_range_no_distance),
         cmocka_unit_test(a_limit_is_a_finding_once),
         cmocka_unit_test(a_quieting_measure_is_worth_what_it_takes_off),
+        cmocka_unit_test(the_others_count_with_ours),
         cmocka_unit_test(relative_levels_count_for_nothing),
         cmocka_unit_test(what_was_left_out_is_counted),
         cmocka_unit_test(a_distance_has_words),
