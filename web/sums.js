@@ -66,8 +66,10 @@ function drawCriteria(state) {
 }
 
 export function drawSums(state) {
-  $("sums").hidden = !state.curve.length;
-  if (!state.curve.length) return;
+  // Continuous sound has no impulses and no curve, but its criteria all the same.
+  $("sums").hidden = !state.curve.length && !state.exposures.length;
+  if ($("sums").hidden) return;
+  $("curve").style.display = state.curve.length ? "" : "none";
   drawCurve(state);
   drawNumbers(state);
   drawCriteria(state);
