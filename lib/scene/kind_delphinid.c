@@ -90,3 +90,37 @@ const struct scene_kind kind_delphinid_clicks = {
     .make = make_clicks,
     .spacing_s = click_spacing_s,
 };
+
+/* Burst pulses: clicks 0.5 to 10 ms apart for 0.05 to 2 s (Au 1993, "The sonar of dolphins"; figures from
+ * memory). */
+static void make_burst(const struct kind_order *order, struct random *random, struct emission *out)
+{
+    make_delphinid_click(random, &out->sound);
+    sound_measure_length(&out->sound);
+    sound_normalize_peak(&out->sound);
+    struct recipe_ramp ramp = {.length_s = random_between(random, 0.1, 0.5), .scatter = 0.04, .level_db = 1};
+    ramp.from_s = random_between(random, 0.002, 0.008);
+    ramp.to_s = ramp.from_s * random_between(random, 0.7, 1.4);
+    recipe_ramped_train(order->emitter, &ramp, random, out);
+}
+
+static double burst_spacing_s(const struct kind_order *order, double length_s, struct random *random)
+{
+    (void)order;
+    return length_s + 0.5 + 4 * random_exponential(random);
+}
+
+const struct scene_kind kind_delphinid_burst = {
+    .name = "delphinid burst pulse",
+    .class = "delphinid burst pulse",
+    .group = GROUP_DELPHINID,
+    .is_animal = true,
+    .level = LEVEL_PEAK,
+    .snr = SNR_PULSE,
+    .source_level_db = 195,
+    .min_rate_hz = 44000,
+    .max_length_s = 1,
+    .min_spacing_s = 0.5,
+    .make = make_burst,
+    .spacing_s = burst_spacing_s,
+};

@@ -38,11 +38,10 @@ void recipe_train(const struct scene_emitter *emitter, struct recipe_rhythm rhyt
         rhythm.interval_s = emitter->pulse_interval_s;
         rhythm.low_s = 0.8 * rhythm.interval_s;
         rhythm.high_s = 1.2 * rhythm.interval_s;
-        rhythm.walk = rhythm.ramp = 0;
+        rhythm.walk = 0;
         rhythm.scatter = 0.04;
     }
     double at_s = 0, interval_s = rhythm.interval_s;
-    double ramp = rhythm.ramp > 0 ? pow(rhythm.ramp, 1.0 / (rhythm.pulses > 2 ? rhythm.pulses - 2 : 1)) : 1;
     out->n_pulses = rhythm.pulses;
     for (uint32_t i = 0; i < rhythm.pulses; i++) {
         double across = rhythm.pulses > 1 ? (double)i / (rhythm.pulses - 1) : 0.5;
@@ -53,8 +52,75 @@ void recipe_train(const struct scene_emitter *emitter, struct recipe_rhythm rhyt
         interval_s = fmin(rhythm.high_s, fmax(rhythm.low_s, interval_s));
         double scattered_s = interval_s * exp(rhythm.scatter * random_normal(random));
         at_s += fmin(rhythm.high_s, fmax(rhythm.low_s, scattered_s));
-        interval_s *= ramp;
     }
+}
+
+void recipe_ramped_train(const struct scene_emitter *emitter, const struct recipe_ramp *ramp,
+                         struct random *random, struct emission *out)
+{
+    if (emitter->pulses > 0 || isfinite(emitter->pulse_interval_s)) {
+        struct recipe_rhythm even = {.pulses = 100,
+                                     .interval_s = ramp->to_s,
+                                     .low_s = 0.8 * ramp->to_s,
+                                     .high_s = 1.2 * ramp->to_s,
+                                     .scatter = ramp->scatter};
+        recipe_train(emitter, even, random, out);
+        return;
+    }
+    double t = 0;
+    uint32_t n = 0;
+    while (n < SCENE_MAX_PULSES && t <= ramp->length_s + ramp->hold_s) {
+        double x = fmin(1, t / ramp->length_s), a = ramp->from_s, b = ramp->to_s;
+        out->pulse_s[n] = t;
+        out->pulse_gain[n++] =
+            (float)units_amplitude_ratio(fmin(0, ramp->level_db * (random_normal(random) - 2)));
+        double interval_s = ramp->linear_rate ? 1 / ((1 - x) / a + x / b) : a * pow(b / a, x);
+        t += interval_s * exp(ramp->scatter * random_normal(random));
+    }
+    out->n_pulses = n;
+}
+
+void recipe_alike(struct emission *out, uint32_t n)
+{
+    out->n_pulses = n;
+    for (uint32_t i = 0; i < n; i++)
+        out->pulse_gain[i] = 1;
+}
+
+static void add_gaps(struct random *random, struct sound *out)
+{
+    uint32_t n = recipe_between(random, 1, SOUND_MAX_GAPS);
+    for (uint32_t i = 0; i < n; i++) {
+        out->gap_s[i] = out->length_s * random_between(random, 0.2, 0.8);
+        out->gap_length_s[i] = random_between(random, 0.005, 0.03);
+    }
+}
+
+void recipe_whistle(const struct recipe_whistle *form, double rate_hz, struct random *random,
+                    struct sound *out)
+{
+    double knots[CONTOUR_MAX_SEGMENTS + 1], top_hz = fmin(form->high_hz, 0.4 * rate_hz);
+    uint32_t n = recipe_between(random, form->least_knots, form->most_knots) - 1;
+    double length_s = random_between(random, form->shortest_s, form->longest_s);
+    double most_hz = fmin(form->most_hz_s * length_s / n, 0.4 * (top_hz - form->low_hz));
+    knots[0] = random_between(random, form->low_hz, top_hz);
+    for (uint32_t i = 1; i <= n; i++) {
+        double next_hz = knots[i - 1] + most_hz * random_between(random, -1, 1);
+        if (next_hz < form->low_hz || next_hz > top_hz) /* back into its range */
+            next_hz = 2 * knots[i - 1] - next_hz;
+        knots[i] = fmin(top_hz, fmax(form->low_hz, next_hz));
+    }
+    recipe_tone(out, length_s, 0.1);
+    if (random_uniform(random) < form->steps_share)
+        contour_steps(&out->contour, knots, n > 2 ? n : 3, length_s);
+    else
+        contour_through(&out->contour, knots, n, length_s);
+    if (random_uniform(random) < form->gaps_share)
+        add_gaps(random, out);
+    double second_db = random_between(random, form->second_low_db, form->second_high_db);
+    const double level[] = {1, units_amplitude_ratio(second_db), units_amplitude_ratio(2 * second_db)};
+    recipe_partials(out, level, 3);
+    sound_normalize_mean_square(out);
 }
 
 /* A struck pile: energy from 100 to 500 Hz, rise of 1 to 5 ms, 90 % of the energy in 50 to 100 ms near the

@@ -103,11 +103,10 @@ static double part_reach_s(const struct sound *sound, const struct sound_part *p
 
 void sound_measure_length(struct sound *sound)
 {
-    sound->length_s = 0;
-    for (uint32_t k = 0; k < sound->n_parts; k++) {
-        double end_s = sound->parts[k].delay_s + part_reach_s(sound, &sound->parts[k]);
-        sound->length_s = fmax(sound->length_s, end_s);
-    }
+    double length_s = 0;
+    for (uint32_t k = 0; k < sound->n_parts; k++)
+        length_s = fmax(length_s, sound->parts[k].delay_s + part_reach_s(sound, &sound->parts[k]));
+    sound->length_s = length_s;
 }
 
 /* What gaps leave at a time; their edges are cosines. */

@@ -3,6 +3,7 @@
 
 #include "base/random.h"
 #include "base/units.h"
+#include "scene/kind.h"
 #include "scene/path.h"
 #include "scene/render.h"
 #include "scene/schedule.h"
@@ -437,6 +438,61 @@ static void rhythms(void **state)
     }
 }
 
+/* Every kind, in a scene of its own: it sounds, stays finite, is the same in pieces and after a jump back,
+ * and keeps the bounds that memory is planned by. */
+static void every_kind_is_the_same_in_pieces(void **state)
+{
+    (void)state;
+    const struct scene_kind *kind;
+    unsigned n_kinds = 0;
+    for (; (kind = scene_kind_at(n_kinds)) != NULL; n_kinds++) {
+        fresh(NULL);
+        listen_near();
+        scene.duration_s = 1000;
+        scene.rate_hz = fmax(160000, kind->min_rate_hz); /* carries what each usually is */
+        scene.n_hydrophones = 2;
+        scene.hydrophones[1] = scene.hydrophones[0];
+        scene.hydrophones[1].place.y_m = 20;
+        struct scene_emitter emitter = scene_emitter_of(kind->name);
+        emitter.track = (struct scene_track){.at_start = {90, 0, 12}, .course_deg = 90, .speed_m_s = 3};
+        if (kind->is_animal)
+            scene.animals[scene.n_animals++] = emitter;
+        else
+            scene.emitters[scene.n_emitters++] = emitter;
+        const uint32_t n = (uint32_t)(0.7 * scene.rate_hz), middle = n / 3 + 17;
+        float *whole = render_all(0, n), *piece = malloc((size_t)n * 2 * sizeof *piece);
+        double sum = 0;
+        for (uint32_t i = 0; i < 2 * n; i++)
+            sum += fabs((double)whole[i]);
+        if (!(isfinite(sum) && sum > 0))
+            print_message("%s: sum %g\n", kind->name, sum);
+        assert_true(isfinite(sum) && sum > 0);
+        struct render *render;
+        assert_int_equal(render_create(&scene, &render), STATUS_OK);
+        render_get(render, middle, piece + 2 * (size_t)middle, n - middle);
+        render_get(render, 0, piece, middle);
+        render_destroy(render);
+        assert_memory_equal(whole, piece, (size_t)n * 2 * sizeof *whole);
+        free(whole);
+        free(piece);
+        struct schedule schedule;
+        static struct emission sound;
+        schedule_list(&scene, &schedule);
+        double before_s = -INFINITY;
+        for (int i = 0; i < 100 && schedule_next(&schedule, &sound); i++) {
+            if (emission_length_s(&sound) > schedule_max_length_s(&schedule) + 1e-9 ||
+                sound.start_s - before_s < schedule_min_spacing_s(&schedule) - 1e-9)
+                print_message("%s: %.3f s long, %.3f s after the one before\n", kind->name,
+                              emission_length_s(&sound), sound.start_s - before_s);
+            assert_true(emission_length_s(&sound) <= schedule_max_length_s(&schedule) + 1e-9);
+            assert_true(sound.start_s - before_s >= schedule_min_spacing_s(&schedule) - 1e-9);
+            before_s = sound.start_s;
+        }
+    }
+    print_message("# figure %u kinds\n", n_kinds);
+    assert_true(n_kinds > 40);
+}
+
 static void impossible_scenes_are_refused(void **state)
 {
     (void)state;
@@ -481,6 +537,7 @@ int main(void)
         cmocka_unit_test_setup(seeds_and_neighbours, fresh),
         cmocka_unit_test_setup(a_converter_clips, fresh),
         cmocka_unit_test_setup(rhythms, fresh),
+        cmocka_unit_test_setup(every_kind_is_the_same_in_pieces, fresh),
         cmocka_unit_test_setup(impossible_scenes_are_refused, fresh),
     };
     return cmocka_run_group_tests_name("scene", tests, NULL, NULL);
