@@ -21,6 +21,7 @@
 #include "listen/strips.h"
 #include "merge.h"
 #include "record/minute.h"
+#include "rule/tally.h"
 #include "rule/watch.h"
 #include "scene/render.h"
 #include "sea/fit.h"
@@ -214,6 +215,8 @@ CASE(together,
                                               .inner_m = 1},
                      &made))
 CASE(fit, fit_create(100, 0, &made))
+CASE(tally,
+     tally_create(&(struct tally_setup){.criteria = &criteria, .n_streams = 2, .loss_n_db = 15}, &made))
 CASE(render, render_create(&scene.scene, &made))
 
 #define LINE(object)                                                                                         \
@@ -224,7 +227,7 @@ static const struct create_case cases[] = {
     LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),   LINE(health), LINE(impulse_finder),
     LINE(tones),     LINE(pulses),   LINE(gate),       LINE(blocks),  LINE(strips), LINE(listen),
     LINE(watch),     LINE(minutes),  LINE(merge),      LINE(watcher), LINE(board),  LINE(render),
-    LINE(exposure),  LINE(fit),      LINE(together),
+    LINE(exposure),  LINE(fit),      LINE(together),   LINE(tally),
 };
 
 static void fail_each_allocation(const struct create_case *one)

@@ -122,7 +122,9 @@ static struct watch_setup good_setup(void)
                                 .act_evidence = 8,
                                 .evidence_decay_s = 300,
                                 .sighting_log_spread = 0.2,
-                                .silence_s = 60};
+                                .silence_s = 60,
+                                .range_m = {[1] = {1500, 0, 3300}}, /* of stream 2 */
+                                .sound_speed_m_s = 1500};
 }
 
 static int begin(void **state)
@@ -220,6 +222,60 @@ static void events_go_out_first_and_completed(void **state)
     assert_int_equal(view.n_impulses, 1);
     assert_true(view.source_heard && view.source_said == PHASE_SOFT_START);
     assert_string_equal(view.job, "A1");
+}
+
+static struct event impulse_of(uint32_t stream, uint32_t channel, int64_t time_ns)
+{
+    struct event event = {.kind = EVENT_IMPULSE, .stream = stream};
+    event.as.impulse =
+        (struct impulse){.channel = channel, .time_ns = time_ns, .sel_db = 170, .peak_db = 190};
+    return event;
+}
+
+/* Two streams, the second 1,500 m from the source: what it hears a second later is the same blow, though the
+ * next one has been struck by then. */
+static void a_blow_on_two_streams_is_one(void **state)
+{
+    (void)state;
+    NOTE(SECOND, NOTE_JOB, {"job", "A1"}, {"answer", "open"});
+    NOTE(2 * SECOND, NOTE_SOURCE, {"source_state", "soft start"});
+    for (int i = 0; i < 20; i++) {
+        int64_t struck_ns = (10 + i) * SECOND + SECOND / 2;
+        if (i > 0)
+            push(impulse_of(2, 1, struck_ns + SECOND / 50), struck_ns + SECOND / 4); /* the one before */
+        push(impulse_of(1, 1, struck_ns), struck_ns + SECOND / 3);
+    }
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_impulses, 20);
+}
+
+/* A channel beside the reference starts nothing and counts for nothing; whose it is the reference says. */
+static void what_is_heard_beside_counts_for_nothing(void **state)
+{
+    (void)state;
+    struct event beside = impulse_of(2, 3, 0);
+    beside.as.impulse.beside = true;
+    NOTE(SECOND, NOTE_JOB, {"job", "A1"}, {"answer", "open"});
+    kept.n = 0;
+    for (int i = 0; i < 10; i++) {
+        beside.as.impulse.time_ns = (10 + i) * SECOND;
+        push(beside, (11 + i) * SECOND);
+    }
+    assert_int_equal(kept.n, 10); /* the events themselves: no finding, phase or advice */
+    watch_get_view(watch, &view);
+    assert_false(view.source_heard);
+    NOTE(30 * SECOND, NOTE_SOURCE, {"source_state", "soft start"});
+    push(impulse_of(2, 1, 41 * SECOND), 42 * SECOND); /* struck at 40 s */
+    kept.n = 0;
+    beside.as.impulse.time_ns = 42 * SECOND + SECOND / 4; /* 1,800 m farther, 50 ms late */
+    push(beside, 43 * SECOND);
+    assert_int_equal(kept.all[0].as.event.as.impulse.whose, IMPULSE_OURS);
+    kept.n = 0;
+    beside.as.impulse.time_ns = 43 * SECOND; /* nothing was struck then */
+    push(beside, 44 * SECOND);
+    assert_int_equal(kept.all[0].as.event.as.impulse.whose, IMPULSE_UNKNOWN);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_impulses, 1);
 }
 
 /* One bang, heard on two channels, is no source; a second one is. */
@@ -353,6 +409,8 @@ int main(void)
         cmocka_unit_test_setup_teardown(bad_setups_and_times_are_refused, begin, end),
         cmocka_unit_test_setup_teardown(events_go_out_first_and_completed, begin, end),
         cmocka_unit_test_setup_teardown(one_bang_is_no_source, begin, end),
+        cmocka_unit_test_setup_teardown(a_blow_on_two_streams_is_one, begin, end),
+        cmocka_unit_test_setup_teardown(what_is_heard_beside_counts_for_nothing, begin, end),
         cmocka_unit_test_setup_teardown(counters_begin_anew_with_each_run, begin, end),
         cmocka_unit_test_setup_teardown(each_station_answers_for_itself, begin, end),
         cmocka_unit_test_setup_teardown(advice_in_force_is_never_forgotten, begin, end),
