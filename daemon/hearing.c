@@ -1,6 +1,8 @@
 /* What the pages show beside the watch; see hearing.h. */
 #include "hearing.h"
 #include "base/time.h"
+#include "base/units.h"
+#include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
 #include <string.h>
@@ -13,6 +15,38 @@ static uint32_t push_front(void *list, uint32_t n, uint32_t max, size_t size)
     return kept + 1;
 }
 
+#define MINUTE_NS (60 * TIME_NS_PER_S)
+
+/* The minute is over: what it came to is shown until the next one is. */
+static void end_minute(struct hearing_level *heard)
+{
+    double kurtosis = moments_kurtosis(&heard->moments), sel_db = units_power_db(heard->energy);
+    heard->research = (struct hearing_research){
+        .kurtosis = kurtosis,
+        .window_s = heard->seconds,
+        .high_hz = heard->level.high_hz,
+        .sel_db = heard->level.relative ? NAN : sel_db,
+        .adjusted_db = heard->level.relative ? NAN : sel_db + moments_goley_db(kurtosis)};
+}
+
+/* As the minute's entry does it (lib/record/level_body.c). */
+static void gather_minute(struct hearing_level *heard, const struct level *level)
+{
+    int64_t minute = level->start_ns / MINUTE_NS;
+    if (minute != heard->minute || level->relative != heard->level.relative) {
+        if (heard->seconds > 0)
+            end_minute(heard);
+        heard->moments = (struct moments){0};
+        heard->energy = heard->seconds = 0;
+        heard->minute = minute;
+    }
+    moments_add(&heard->moments, &level->moments);
+    if (isnan(level->spl_db))
+        return;
+    heard->energy += units_power_ratio(level->spl_db) * level->seconds;
+    heard->seconds += level->seconds;
+}
+
 static void take_level(struct hearing_view *hearing, uint32_t stream, const struct level *level)
 {
     uint32_t i = 0;
@@ -21,9 +55,13 @@ static void take_level(struct hearing_view *hearing, uint32_t stream, const stru
         i++;
     if (i == BOARD_MAX_LEVELS)
         return;
-    hearing->levels[i] = (struct hearing_level){.stream = stream, .level = *level};
-    if (i == hearing->n_levels)
+    if (i == hearing->n_levels) {
         hearing->n_levels++;
+        hearing->levels[i] =
+            (struct hearing_level){.stream = stream, .level = *level, .research = {.kurtosis = NAN}};
+    }
+    gather_minute(&hearing->levels[i], level);
+    hearing->levels[i].level = *level;
 }
 
 static bool overlaps(const struct unheard *a, const struct unheard *b)
@@ -90,7 +128,7 @@ static void take_call(struct hearing_view *hearing, const struct outcome *outcom
     flow_id(outcome->run, outcome->stream, "call", outcome->counter, hearing->calls[0].id);
 }
 
-/* The soft start's curve: the loudest impulse of ours in each step. */
+/* The soft start's curve: the greatest SEL and peak of ours in each step. */
 static void take_curve(struct hearing_view *hearing, const struct impulse *impulse)
 {
     int64_t step = impulse->time_ns / (BOARD_CURVE_STEP_S * TIME_NS_PER_S);
@@ -98,17 +136,19 @@ static void take_curve(struct hearing_view *hearing, const struct impulse *impul
     if (impulse->whose != IMPULSE_OURS || impulse->relative || !(impulse->sel_db > -1000))
         return;
     if (n > 0 && hearing->curve_step[n - 1] == step) {
-        if ((float)impulse->sel_db > hearing->curve_sel_db[n - 1])
-            hearing->curve_sel_db[n - 1] = (float)impulse->sel_db;
+        hearing->curve_sel_db[n - 1] = fmaxf((float)impulse->sel_db, hearing->curve_sel_db[n - 1]);
+        hearing->curve_peak_db[n - 1] = fmaxf((float)impulse->peak_db, hearing->curve_peak_db[n - 1]);
         return;
     }
     if (n == BOARD_CURVE_STEPS) {
         n--;
         memmove(hearing->curve_step, hearing->curve_step + 1, n * sizeof hearing->curve_step[0]);
         memmove(hearing->curve_sel_db, hearing->curve_sel_db + 1, n * sizeof hearing->curve_sel_db[0]);
+        memmove(hearing->curve_peak_db, hearing->curve_peak_db + 1, n * sizeof hearing->curve_peak_db[0]);
     }
     hearing->curve_step[n] = step;
     hearing->curve_sel_db[n] = (float)impulse->sel_db;
+    hearing->curve_peak_db[n] = (float)impulse->peak_db;
     hearing->n_curve = n + 1;
 }
 

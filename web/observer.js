@@ -7,7 +7,7 @@ import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
 import { drawLadder } from "/ladder.js";
 import { startStrips } from "/strips.js";
-import { drawSums } from "/sums.js";
+import { drawResearch, drawSums, startSums } from "/sums.js";
 
 const alertSound = new Alarm(20);
 const verdictSound = new Alarm(10);
@@ -95,7 +95,7 @@ function drawSource(state) {
   setText($("impulse_count"), state.n_impulses + " of ours in this job");
   const blows = state.impulses.length ? state.impulses.slice(0, 5) : [null];
   keyed($("impulses").tBodies[0], blows, (impulse) => impulse && impulse.id, () => el("tr"), (row, impulse) =>
-    cells(row, !impulse ? ["None yet", "", "", "", ""] : [utc(impulse.time_s), db(impulse.sel_db, impulse.relative), db(impulse.peak_db, impulse.relative) + (impulse.clipped ? " clipped" : ""), (impulse.t90_s * 1000).toFixed(0) + " ms", impulse.whose]));
+    cells(row, !impulse ? ["None yet", "", "", "", "", ""] : [utc(impulse.time_s), db(impulse.sel_db, impulse.relative), db(impulse.peak_db, impulse.relative), impulse.t90_s === null ? "–" : (impulse.t90_s * 1000).toFixed(0) + " ms", impulse.whose, ["clipped", "overlapped", "weak", "refused"].filter((mark) => impulse[mark]).join(", ")]));
   keyed($("levels").tBodies[0], state.levels.slice(0, 16), (level) => level.stream + "." + level.channel, () => el("tr"), (row, level) => {
     const high = level.decades.slice(3).map((d) => d.spl_db).filter((v) => v !== null);
     const above = high.length ? 10 * Math.log10(high.reduce((sum, v) => sum + 10 ** (v / 10), 0)) : null;
@@ -105,7 +105,8 @@ function drawSource(state) {
 }
 
 function drawHearing(state) {
-  drawSums(state);
+  drawSums(state, site ? site.permit.zones : []);
+  drawResearch(state);
   keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
     node.classList.toggle("bad", !stream.hearing);
     setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));
@@ -203,6 +204,7 @@ startPalette();
 startSound($("sound"));
 startForms();
 startStrips();
+startSums(draw);
 loadPermit().then((loaded) => {
   site = loaded;
   drawPermit();

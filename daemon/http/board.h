@@ -55,9 +55,20 @@ struct hearing_stream {
     struct class_account accounts[LISTEN_MAX_ACCOUNTS];
 };
 
+/* Impulsiveness of a channel's last whole minute of watch time: a remark for people, marked as research. */
+struct hearing_research {
+    double kurtosis;            /* NAN before the first minute */
+    double window_s, high_hz;   /* of the sound in it, over 0 Hz to high_hz */
+    double sel_db, adjusted_db; /* SEL of that minute, and kurtosis-adjusted (Goley et al. 2011) */
+};
+
 struct hearing_level {
     uint32_t stream; /* from 1 */
     struct level level;
+    struct hearing_research research;
+    int64_t minute; /* number of the minute that is being gathered */
+    struct moments moments;
+    double energy, seconds; /* of it: sum of p^2 T, uPa2 s, and T */
 };
 
 struct hearing_call {
@@ -92,7 +103,7 @@ struct hearing_view {
     struct hearing_unheard unheard[BOARD_MAX_UNHEARD];
     uint32_t n_curve; /* the loudest of our impulses in each step of the last hour, oldest first */
     int64_t curve_step[BOARD_CURVE_STEPS]; /* watch time / BOARD_CURVE_STEP_S */
-    float curve_sel_db[BOARD_CURVE_STEPS];
+    float curve_sel_db[BOARD_CURVE_STEPS], curve_peak_db[BOARD_CURVE_STEPS];
     uint32_t n_exposures; /* the last word on each criterion */
     struct exposure_outcome exposures[BOARD_MAX_EXPOSURES];
     uint32_t n_sources; /* the last of each stream */

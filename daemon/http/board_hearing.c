@@ -1,4 +1,5 @@
 /* The board's text of what is heard: streams, levels, calls, impulses, unheard time, recording, faults. */
+#include "base/round.h"
 #include "base/time.h"
 #include "base/units.h"
 #include "http/board_json.h"
@@ -72,6 +73,20 @@ static void decades(struct text *text, const struct level *level)
     text_append(text, "]");
 }
 
+static void research(struct text *text, const struct hearing_research *research)
+{
+    bool known = isfinite(research->kurtosis);
+    json_name(text, "research");
+    text_append(text, "{");
+    json_number(text, "kurtosis", research->kurtosis, ROUND_DECIMALS_KURTOSIS);
+    json_number(text, "boundary", MOMENTS_IMPULSIVE, 0);
+    json_number(text, "window_s", known ? research->window_s : NAN, 1);
+    json_number(text, "high_hz", known ? research->high_hz : NAN, ROUND_DECIMALS_HZ);
+    json_number(text, "sel_db", known ? research->sel_db : NAN, ROUND_DECIMALS_DB);
+    json_number(text, "adjusted_sel_db", known ? research->adjusted_db : NAN, ROUND_DECIMALS_DB);
+    text_append(text, "}");
+}
+
 static void levels(struct text *text, const struct hearing_view *hearing)
 {
     json_name(text, "levels");
@@ -88,6 +103,7 @@ static void levels(struct text *text, const struct hearing_view *hearing)
         json_number(text, "peak_db", level->peak_db, 2);
         json_flag(text, "relative", level->relative);
         decades(text, level);
+        research(text, &hearing->levels[i].research);
         text_append(text, "}");
     }
     text_append(text, "]");
@@ -133,6 +149,9 @@ static void one_impulse(struct text *text, const struct hearing_impulse *heard)
     json_number(text, "t90_s", impulse->t90_s, 6);
     json_flag(text, "relative", impulse->relative);
     json_flag(text, "clipped", impulse->clipped);
+    json_flag(text, "overlapped", impulse->overlapped);
+    json_flag(text, "weak", impulse->weak);
+    json_flag(text, "refused", impulse->refused);
     json_text(text, "whose", impulse_whose_text(impulse->whose));
     json_text(text, "job", impulse->job);
     text_append(text, "}");

@@ -85,14 +85,14 @@ enum zone_warning tally_warnings_text(const struct tally_warnings *warnings, con
             continue;
         strongest = warning;
         most_db = over_db;
-        snprintf(out, FLOW_TEXT_SIZE,
-                 "%s%.60s, %.60s: %s at %.0f m rises to %.1f dB (%.1f to %.1f) by the end of the soft start "
-                 "and %s %.1f dB",
-                 one->limit.exceedance > 0 ? "the limit of " : "", criterion->set, criterion->name,
-                 criterion_metric_text(one->limit.metric), one->limit.range_m, forecast.db,
-                 forecast.low_db - TALLY_BOUND * one->move_spread_db,
-                 forecast.high_db + TALLY_BOUND * one->move_spread_db,
-                 warning == ZONE_WILL_PASS ? "will pass" : "may pass", one->limit.limit_db);
+        snprintf(
+            out, FLOW_TEXT_SIZE,
+            "%.60s (%.60s) rises to %.1f dB (90 %%: %.1f to %.1f) at %.0f m by the end of the soft start "
+            "and %s the %s of %.1f dB",
+            criterion->name, criterion->set, forecast.db, forecast.low_db - TALLY_BOUND * one->move_spread_db,
+            forecast.high_db + TALLY_BOUND * one->move_spread_db, one->limit.range_m,
+            warning == ZONE_WILL_PASS ? "will pass" : "may pass",
+            criterion->effect == EFFECT_LIMIT ? "limit" : "criterion", one->limit.limit_db);
     }
     return strongest;
 }

@@ -79,6 +79,55 @@ static void fill(struct watch_view *watch, struct hearing_view *hearing)
     hearing->levels[0].level = (struct level){.channel = 2, .spl_db = 100, .n_bands = 12, .relative = true};
     for (int i = 0; i < 12; i++)
         hearing->levels[0].level.band_db[i] = i < 11 ? 90 : NAN;
+    hearing->levels[0].research = (struct hearing_research){.kurtosis = NAN};
+    hearing->n_curve = 1;
+    hearing->curve_step[0] = 8;
+    hearing->curve_sel_db[0] = 150.5f;
+    hearing->curve_peak_db[0] = NAN;
+    hearing->n_exposures = 1;
+    hearing->exposures[0] = (struct exposure_outcome){.value_db = NAN,
+                                                      .level_db = NAN,
+                                                      .value_pa_s = 30,
+                                                      .level_pa_s = 41.5,
+                                                      .distance_m = INFINITY,
+                                                      .distance = "beyond 1000 km",
+                                                      .n_clipped = 3};
+    hearing->n_sources = 1;
+    hearing->sources[0] = (struct source_outcome){.n_insertion_bands = 2,
+                                                  .insertion_band_db = {NAN, 8},
+                                                  .n_reductions = 1,
+                                                  .reductions = {{"NMFS 2024 LF", 8.4, 7, 9}},
+                                                  .quieting_falls_db = NAN,
+                                                  .warning = "may pass",
+                                                  .n_refused = 4};
+}
+
+/* What is not known is null, and what has another unit has another name. */
+static void check_sums(json_t *root)
+{
+    json_t *point = json_array_get(json_object_get(root, "curve"), 0);
+    assert_int_equal(json_integer_value(json_array_get(point, 0)), 8 * BOARD_CURVE_STEP_S);
+    assert_near(json_number_value(json_array_get(point, 1)), 150.5, 1e-9);
+    assert_true(json_is_null(json_array_get(point, 2)));
+    json_t *exposure = json_array_get(json_object_get(root, "exposures"), 0);
+    assert_true(json_is_null(json_object_get(exposure, "level_db")));
+    assert_near(json_number_value(json_object_get(exposure, "level_pa_s")), 41.5, 1e-9);
+    assert_true(json_is_null(json_object_get(exposure, "distance_m")));
+    assert_string_equal(json_string_value(json_object_get(exposure, "distance")), "beyond 1000 km");
+    assert_int_equal(json_integer_value(json_object_get(exposure, "n_clipped")), 3);
+    json_t *source = json_array_get(json_object_get(root, "sources"), 0);
+    json_t *bands = json_object_get(source, "insertion_bands_db");
+    assert_int_equal(json_array_size(bands), 2);
+    assert_true(json_is_null(json_array_get(bands, 0)));
+    assert_near(json_number_value(json_array_get(bands, 1)), 8, 1e-9);
+    json_t *reduction = json_array_get(json_object_get(source, "reductions"), 0);
+    assert_string_equal(json_string_value(json_object_get(reduction, "weighting")), "NMFS 2024 LF");
+    assert_near(json_number_value(json_object_get(reduction, "low_db")), 7, 1e-9);
+    assert_true(json_is_null(json_object_get(source, "quieting_falls_db")));
+    assert_string_equal(json_string_value(json_object_get(source, "warning")), "may pass");
+    assert_int_equal(json_integer_value(json_object_get(source, "n_refused")), 4);
+    json_t *level = json_array_get(json_object_get(root, "levels"), 0);
+    assert_true(json_is_null(json_object_get(json_object_get(level, "research"), "kurtosis")));
 }
 
 static void a_snapshot_says_what_the_views_say(void **state)
@@ -125,6 +174,7 @@ static void a_snapshot_says_what_the_views_say(void **state)
     assert_int_equal(json_array_size(decades), 2);
     assert_near(json_number_value(json_object_get(json_array_get(decades, 0), "spl_db")), 100, 0.005);
     assert_near(json_number_value(json_object_get(json_array_get(decades, 1), "spl_db")), 90, 0.005);
+    check_sums(root);
     json_decref(root);
     char wanted[80];
     snprintf(wanted, sizeof wanted, "id: 3-%d\nevent: state\ndata: {", (int)snapshot->sequence);
