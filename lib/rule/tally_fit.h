@@ -30,7 +30,7 @@ void tally_fit_destroy(struct tally_fit *fit);
 void tally_fit_begin_job(struct tally_fit *fit);
 /* Takes an impulse that the channel heard at range_m; leaves out what does not serve. */
 void tally_fit_push(struct tally_fit *fit, uint32_t stream, double range_m, const struct impulse *impulse);
-/* Fits what is complete; a millisecond or so. True when there is a new law. */
+/* Fits what is complete; about 4 ms for 2,048 levels. True when there is a new law. */
 bool tally_fit_update(struct tally_fit *fit);
 /* NULL while there is none. Borrowed until the next update or job. */
 const struct source_law *tally_fit_get(const struct tally_fit *fit);
