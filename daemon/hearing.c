@@ -191,8 +191,21 @@ static void take_source(struct hearing_view *hearing, const struct source_outcom
         hearing->n_sources++;
 }
 
+static void take_correction(struct hearing_view *hearing, const struct correction_outcome *correction)
+{
+    char id[FLOW_ID_SIZE];
+    for (uint32_t i = 0; i < correction->n; i++) {
+        flow_id(correction->run, correction->stream, "impulse", correction->counters[i], id);
+        for (uint32_t k = 0; k < hearing->n_impulses; k++)
+            if (strcmp(hearing->impulses[k].id, id) == 0)
+                hearing->impulses[k].impulse.whose = correction->whose;
+    }
+}
+
 void hearing_take(struct hearing_view *hearing, const struct outcome *outcome)
 {
+    if (outcome->kind == OUTCOME_CORRECTION)
+        take_correction(hearing, &outcome->as.correction);
     if (outcome->kind == OUTCOME_EXPOSURE)
         take_exposure(hearing, &outcome->as.exposure);
     if (outcome->kind == OUTCOME_SOURCE)

@@ -22,7 +22,7 @@ struct rebuilding {
 static bool is_conclusion(const char *kind)
 {
     return strcmp(kind, "contact") == 0 || strcmp(kind, "phase") == 0 || strcmp(kind, "advice") == 0 ||
-           strcmp(kind, "finding") == 0;
+           strcmp(kind, "finding") == 0 || strcmp(kind, "correction") == 0;
 }
 
 static void forget(struct restored_entry *entry)

@@ -94,6 +94,8 @@ const char *flow_outcome_kind_text(const struct outcome *outcome)
         return "finding";
     case OUTCOME_EXPOSURE:
         return "exposure";
+    case OUTCOME_CORRECTION:
+        return "correction";
     case OUTCOME_SOURCE:
         return "source";
     }

@@ -238,6 +238,19 @@ struct source_outcome {
     char reason[FLOW_TEXT_SIZE];                        /* why a number is missing */
 };
 
+#define FLOW_MAX_CORRECTED 64
+
+/* A person has said whose these impulses are: of one run, stream and channel, by their counters. */
+struct correction_outcome {
+    uint32_t run, stream, channel;
+    enum impulse_whose whose; /* now */
+    char job[IMPULSE_JOB_SIZE];
+    char note[FLOW_ID_SIZE]; /* that says so */
+    uint32_t n;
+    uint64_t counters[FLOW_MAX_CORRECTED];
+    uint32_t n_following; /* corrections by the same note that come directly after */
+};
+
 enum outcome_kind {
     OUTCOME_EVENT,
     OUTCOME_CONTACT,
@@ -245,7 +258,8 @@ enum outcome_kind {
     OUTCOME_ADVICE,
     OUTCOME_FINDING,
     OUTCOME_EXPOSURE,
-    OUTCOME_SOURCE
+    OUTCOME_SOURCE,
+    OUTCOME_CORRECTION
 };
 
 /* What the watch says: the event it took, completed (an impulse's job and whose, a note's known time), or a
@@ -264,6 +278,7 @@ struct outcome {
         struct finding_outcome finding;
         struct exposure_outcome exposure;
         struct source_outcome source;
+        struct correction_outcome correction;
     } as;
 };
 

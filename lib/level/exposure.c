@@ -120,6 +120,30 @@ void exposure_reset(struct exposure *exposure)
     exposure_begin_job(exposure);
 }
 
+static void copy_buckets(const struct buckets *from, struct buckets *to)
+{
+    struct bucket *items = to->items;
+    memcpy(items, from->items, from->n * sizeof *items);
+    *to = *from;
+    to->items = items;
+}
+
+void exposure_copy(const struct exposure *from, struct exposure *to)
+{
+    struct exposure kept = *to;
+    *to = *from;
+    to->items = kept.items;
+    to->table = kept.table;
+    to->received_ring = kept.received_ring;
+    to->placed_ring = kept.placed_ring;
+    to->placed_job = kept.placed_job;
+    memcpy(to->items, from->items, from->n * sizeof *to->items);
+    memcpy(to->table, from->table, TABLE_N * LEVEL_MAX_BANDS * sizeof *to->table);
+    copy_buckets(&from->received_ring, &to->received_ring);
+    copy_buckets(&from->placed_ring, &to->placed_ring);
+    copy_buckets(&from->placed_job, &to->placed_job);
+}
+
 /* One sound as a bucket of its own; energies as received. */
 static void to_bucket(const struct exposure *exposure, const struct exposure_sound *sound, bool ranged,
                       struct bucket *out)

@@ -123,6 +123,8 @@ enum status exposure_create(const struct exposure_setup *setup, struct exposure 
 void exposure_destroy(struct exposure *exposure);
 /* Forgets all sounds. */
 void exposure_reset(struct exposure *exposure);
+/* Makes `to` what `from` is now. Both are of the same setup. */
+void exposure_copy(const struct exposure *from, struct exposure *to);
 /* Another law from now on. What was summed stays as it was brought to reference_m: rebuild for another
  * answer. */
 enum status exposure_set_loss(struct exposure *exposure, const struct exposure_loss *loss);

@@ -103,6 +103,7 @@ static enum status note_body(const struct event *event, struct text *out)
     if (note->group != GROUP_UNKNOWN)
         body_text(&body, "group", group_text(note->group));
     body_id(&body, event->run, event->stream, "note", event->counter);
+    body_text_if_given(&body, "impulse", note->impulse);
     body_text_if_given(&body, "job", note->job);
     body_time(&body, "known_s", note->known_ns);
     if (note->leaving)
@@ -215,6 +216,27 @@ static enum status finding_body(const struct outcome *outcome, struct text *out)
     return body_end(&body);
 }
 
+static enum status correction_body(const struct outcome *outcome, struct text *out)
+{
+    const struct correction_outcome *correction = &outcome->as.correction;
+    struct body body;
+    body_begin(&body, out);
+    body_causes(&body, 1, &correction->note);
+    body_integer(&body, "channel", correction->channel);
+    body_id(&body, outcome->run, outcome->stream, "correction", outcome->counter);
+    body_key(&body, "impulses");
+    for (uint32_t i = 0; i < correction->n; i++) {
+        char id[FLOW_ID_SIZE];
+        flow_id(correction->run, correction->stream, "impulse", correction->counters[i], id);
+        text_format(body.out, "%s\"%s\"", i ? "," : "[", id);
+    }
+    text_append(body.out, correction->n ? "]" : "[]");
+    body_text_or_null(&body, "job", correction->job);
+    body_integer(&body, "stream", correction->stream);
+    body_text(&body, "whose", impulse_whose_text(correction->whose));
+    return body_end(&body);
+}
+
 enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, struct text *out)
 {
     switch (outcome->kind) {
@@ -228,6 +250,8 @@ enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, stru
         return advice_body(outcome, zero_unix_ns, out);
     case OUTCOME_FINDING:
         return finding_body(outcome, out);
+    case OUTCOME_CORRECTION:
+        return correction_body(outcome, out);
     case OUTCOME_EXPOSURE:
         return body_of_exposure(outcome, out);
     case OUTCOME_SOURCE:

@@ -223,6 +223,7 @@ static void read_note(struct reading *reading, struct note *note)
     reading_text(reading, "verdict", false, note->verdict, sizeof note->verdict);
     reading_text(reading, "answer", false, note->answer, sizeof note->answer);
     reading_text(reading, "advice", false, note->advice, sizeof note->advice);
+    reading_text(reading, "impulse", false, note->impulse, sizeof note->impulse);
     reading_text(reading, "job", false, note->job, sizeof note->job);
     reading_text(reading, "source_state", false, note->source_state, sizeof note->source_state);
     reading_text(reading, "text", false, note->text, sizeof note->text);

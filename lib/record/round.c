@@ -92,8 +92,9 @@ static void round_call(struct call *call)
 
 static void round_note(struct note *note)
 {
-    char *const texts[] = {note->person, note->watch,  note->station, note->species,      note->verdict,
-                           note->answer, note->advice, note->job,     note->source_state, note->text};
+    char *const texts[] = {note->person,  note->watch,        note->station, note->species,
+                           note->verdict, note->answer,       note->advice,  note->impulse,
+                           note->job,     note->source_state, note->text};
     for (size_t i = 0; i < sizeof texts / sizeof texts[0]; i++)
         clean(texts[i]);
     note->occurred_ns = time_round_us(note->occurred_ns);

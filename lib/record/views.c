@@ -52,6 +52,8 @@ const struct schema_object views_schema[] = {
         COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak") COLUMN("effective_s")
         COLUMN("kurtosis") COLUMN("window_s") COLUMN("positive_impulse_pa_s") COLUMN("bands")
         COLUMN("refused") COLUMN("beside")),
+    VIEW("correction",
+        COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("whose") COLUMN("impulses") COLUMN("causes")),
     /* No kind: what the impulses of a job come to. */
     {"view", "impulse_count",
      "CREATE VIEW impulse_count AS SELECT stream, job, whose, COUNT(*) AS impulses, MIN(time_s) AS first_s, "
@@ -93,7 +95,7 @@ const struct schema_object views_schema[] = {
         COLUMN("note") COLUMN("person") COLUMN("watch") COLUMN("station") COLUMN("occurred_s")
         COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number") COLUMN("calf")
         COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN("verdict") COLUMN("advice")
-        COLUMN("answer") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
+        COLUMN("answer") COLUMN("impulse") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
         COLUMN("text")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")

@@ -8,19 +8,13 @@
 #include <string.h>
 
 static const char *const kind_words[NOTE_KIND_COUNT] = {
-    [NOTE_SIGN_ON] = "sign-on",
-    [NOTE_SIGN_OFF] = "sign-off",
-    [NOTE_SIGHTING] = "sighting",
-    [NOTE_DISTANCE] = "distance",
-    [NOTE_VERDICT] = "verdict",
-    [NOTE_RELEASE] = "release",
-    [NOTE_SOURCE] = "source state",
-    [NOTE_JOB] = "job",
-    [NOTE_WEATHER] = "weather",
-    [NOTE_QUIETING] = "quieting",
-    [NOTE_MARK] = "mark",
-    [NOTE_REMARK] = "remark",
-    [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
+    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off",
+    [NOTE_SIGHTING] = "sighting",   [NOTE_DISTANCE] = "distance",
+    [NOTE_VERDICT] = "verdict",     [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",
+    [NOTE_WEATHER] = "weather",     [NOTE_QUIETING] = "quieting",
+    [NOTE_WHOSE] = "whose",         [NOTE_MARK] = "mark",
+    [NOTE_REMARK] = "remark",       [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
 
 enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
@@ -37,8 +31,8 @@ struct field {
 
 static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
 static const char *const verdict_words[] = {"confirm", "dismiss", "left", NULL};
-static const char *const answer_words[] = {"seen",  "passed", "stopped", "declined", "open",
-                                           "close", "on",     "off",     NULL};
+static const char *const answer_words[] = {"seen", "passed", "stopped", "declined", "open", "close",
+                                           "on",   "off",    "ours",    "other",    NULL};
 static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
@@ -62,8 +56,10 @@ static const struct field fields[] = {
     {TEXT(species), .allowed = NAME_ALLOWED},
     {WORD(verdict, verdict_words), .allowed = "confirm, dismiss, left"},
     {WORD(answer, answer_words),
-     .allowed = "seen, passed, stopped, declined (acknowledgement); open, close (job)"},
+     .allowed = "seen, passed, stopped, declined (acknowledgement); open, close (job); on, off (quieting); "
+                "ours, other (whose)"},
     {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
+    {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
     {.name = "job",
      .form = FIELD_TEXT,
      .offset = offsetof(struct note, job),
@@ -209,8 +205,9 @@ static const char *missing_of_answer(const struct note *note)
 {
     bool of_job = strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0;
     bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
-    bool good =
-        *note->answer && of_job == (note->kind == NOTE_JOB) && of_quieting == (note->kind == NOTE_QUIETING);
+    bool of_whose = strcmp(note->answer, "ours") == 0 || strcmp(note->answer, "other") == 0;
+    bool good = *note->answer && of_job == (note->kind == NOTE_JOB) &&
+                of_quieting == (note->kind == NOTE_QUIETING) && of_whose == (note->kind == NOTE_WHOSE);
     return good ? NULL : "answer";
 }
 
@@ -250,6 +247,8 @@ static const char *missing_of(const struct note *note)
         return !*note->job ? "job" : missing_of_answer(note);
     case NOTE_QUIETING:
         return missing_of_answer(note);
+    case NOTE_WHOSE:
+        return !person ? "person" : !*note->impulse ? "impulse" : missing_of_answer(note);
     case NOTE_WEATHER:
         return isnan(note->sea_state) && isnan(note->visibility_m) ? "sea_state" : NULL;
     case NOTE_MARK:

@@ -25,6 +25,8 @@ enum note_kind {
     NOTE_WEATHER,  /* sea_state, visibility_m */
     NOTE_QUIETING, /* answer (on | off): a quieting measure is at work or not; text: which, e.g. bubble
                       curtain */
+    NOTE_WHOSE,    /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
+                      occurred_ns on; all of it in the job where that is not given */
     NOTE_MARK,     /* text */
     NOTE_REMARK,   /* text */
     NOTE_KIND_COUNT
@@ -42,6 +44,7 @@ struct note {
     char answer[NOTE_NAME_SIZE];
     char advice[NOTE_NAME_SIZE];
     char job[NOTE_NAME_SIZE];
+    char impulse[NOTE_NAME_SIZE];
     char source_state[NOTE_NAME_SIZE];
     char text[NOTE_TEXT_SIZE];
     enum group group;  /* GROUP_UNKNOWN where not given */

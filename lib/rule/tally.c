@@ -10,6 +10,22 @@
 
 #define MINUTE_NS (60 * TIME_NS_PER_S)
 
+static enum status create_sums(const struct exposure_setup *setup, struct sums *sums)
+{
+    enum status status = exposure_create(setup, &sums->exposure);
+    if (status != STATUS_OK || setup->sound != SOUND_IMPULSIVE)
+        return status;
+    sums->kept = calloc(TALLY_MAX_KEPT, sizeof *sums->kept);
+    return sums->kept ? exposure_create(setup, &sums->before_job) : STATUS_NO_MEMORY;
+}
+
+static void destroy_sums(struct sums *sums)
+{
+    exposure_destroy(sums->exposure);
+    exposure_destroy(sums->before_job);
+    free(sums->kept);
+}
+
 enum status tally_create(const struct tally_setup *setup, struct tally **out)
 {
     if (!setup->criteria || setup->criteria->n == 0 || setup->n_streams < 1 ||
@@ -34,7 +50,7 @@ enum status tally_create(const struct tally_setup *setup, struct tally **out)
         tally_limits_reset(&tally->sums[i].limits, setup->criteria);
         tally_warnings_reset(&tally->sums[i].warnings, setup->criteria, setup->zone_edge_m,
                              setup->soft_start_s);
-        status = exposure_create(&exposure, &tally->sums[i].exposure);
+        status = create_sums(&exposure, &tally->sums[i]);
     }
     if (status == STATUS_OK)
         status = tally_together_create(setup, &exposure, &tally->together);
@@ -52,7 +68,7 @@ void tally_destroy(struct tally *tally)
     if (!tally)
         return;
     for (uint32_t i = 0; tally->sums && i < tally->setup.n_streams; i++)
-        exposure_destroy(tally->sums[i].exposure);
+        destroy_sums(&tally->sums[i]);
     tally_fit_destroy(tally->fit);
     together_destroy(tally->together);
     free(tally->sums);
@@ -66,9 +82,9 @@ static void fill_place(const struct tally *tally, uint32_t i, uint32_t *stream, 
     memcpy(job, tally->job, IMPULSE_JOB_SIZE);
 }
 
-static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
-                        const struct finding_outcome *finding, struct tally_said *said,
-                        const struct outcome_sink *sink)
+void tally_say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
+                       const struct finding_outcome *finding, struct tally_said *said,
+                       const struct outcome_sink *sink)
 {
     struct outcome outcome = {
         .kind = OUTCOME_FINDING, .run = tally->run, .stream = i + 1, .watch_ns = watch_ns};
@@ -79,6 +95,22 @@ static void say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
     sink->take(sink->context, &outcome);
 }
 
+bool tally_zone_distance(const struct tally *tally, uint32_t i, const struct exposure_outcome *exposure,
+                         struct zone_distance *out)
+{
+    const struct sums *sums = &tally->sums[i];
+    if (!isfinite(tally->setup.zone_edge_m) || isnan(exposure->distance_m))
+        return false;
+    *out = (struct zone_distance){.zone_m = tally->setup.zone_edge_m,
+                                  .distance_m = exposure->distance_m,
+                                  .low_m = exposure->distance_low_m,
+                                  .role = tally->setup.role[i][sums->channel - 1],
+                                  .range_m = tally_range_m(tally, i + 1, sums->channel),
+                                  .level_db = exposure->level_db,
+                                  .threshold_db = exposure->value_db};
+    return true;
+}
+
 /* A criterion of injury that is met beyond the zone's edge: by ours alone, else with the others (reach; NULL
  * where there are none). */
 static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct exposure_outcome *exposure,
@@ -87,21 +119,15 @@ static void check_zone(struct tally *tally, uint32_t i, uint32_t c, const struct
     struct sums *sums = &tally->sums[i];
     const struct criterion *criterion = &tally->setup.criteria->items[c];
     struct finding_outcome finding;
-    if (!isfinite(tally->setup.zone_edge_m) || isnan(exposure->distance_m))
+    struct zone_distance distance;
+    if (!tally_zone_distance(tally, i, exposure, &distance))
         return;
-    const struct zone_distance distance = {.zone_m = tally->setup.zone_edge_m,
-                                           .distance_m = exposure->distance_m,
-                                           .low_m = exposure->distance_low_m,
-                                           .role = tally->setup.role[i][sums->channel - 1],
-                                           .range_m = tally_range_m(tally, i + 1, sums->channel),
-                                           .level_db = exposure->level_db,
-                                           .threshold_db = exposure->value_db};
     if (tally_zone_finding(criterion, &distance, tally->job, sums->said[c].grade, &finding))
-        say_finding(tally, i, watch_ns, &finding, &sums->said[c], sink);
+        tally_say_finding(tally, i, watch_ns, &finding, &sums->said[c], sink);
     else if (reach && sums->said[c].grade < ZONE_INDICATIVE &&
              tally_together_finding(criterion, reach, &tally->setup, tally->job, sums->said_together[c].grade,
                                     &finding))
-        say_finding(tally, i, watch_ns, &finding, &sums->said_together[c], sink);
+        tally_say_finding(tally, i, watch_ns, &finding, &sums->said_together[c], sink);
 }
 
 static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, const struct outcome_sink *sink)
@@ -125,7 +151,7 @@ static void say_exposures(struct tally *tally, uint32_t i, int64_t watch_ns, con
     struct finding_outcome finding;
     struct tally_said *said;
     while ((said = tally_limits_next(&sums->limits, tally->setup.criteria, tally->job, &finding)))
-        say_finding(tally, i, watch_ns, &finding, said, sink);
+        tally_say_finding(tally, i, watch_ns, &finding, said, sink);
 }
 
 /* A quieting measure that takes off less than it did, said once a job. */
@@ -135,7 +161,7 @@ static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, co
     struct finding_outcome finding;
     if (sums->falling.grade != ZONE_NOTHING || !tally_quieting_finding(&sums->quieting, tally->job, &finding))
         return;
-    say_finding(tally, i, watch_ns, &finding, &sums->falling, sink);
+    tally_say_finding(tally, i, watch_ns, &finding, &sums->falling, sink);
 }
 
 /* What one channel heard; of the reference also what quieting and the soft start come to. */
@@ -214,6 +240,19 @@ static void take_phase(struct tally *tally, enum phase phase, int64_t watch_ns,
     }
 }
 
+static void take_impulse(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
+{
+    const struct event *event = &outcome->as.event;
+    const struct impulse *impulse = &event->as.impulse;
+    if (tally->setup.sound != SOUND_IMPULSIVE || impulse->channel < 1 || impulse->channel > FLOW_MAX_CHANNELS)
+        return; /* in the levels of its seconds it is counted already */
+    double range_m = tally_range_m(tally, event->stream, impulse->channel);
+    tally_keep(tally, event->stream, outcome->run, event->counter, impulse);
+    if (tally_sum(tally, event->stream, impulse, range_m, tally->quieting_on))
+        tally_fit_push(tally->fit, event->stream, range_m, impulse);
+    check_warning(tally, event->stream - 1, outcome->watch_ns, sink);
+}
+
 static void take_event(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
 {
     const struct event *event = &outcome->as.event;
@@ -222,11 +261,9 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         tally->n_exposures = tally->n_sources = 0;
         for (uint32_t i = 0; i < tally->setup.n_streams; i++)
             tally->sums[i].n_findings = 0;
-    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 &&
-               event->stream <= tally->setup.n_streams) {
-        tally_take_impulse(tally, event->stream, &event->as.impulse);
-        check_warning(tally, event->stream - 1, outcome->watch_ns, sink);
-    } else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+        take_impulse(tally, outcome, sink);
+    else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         tally_take_level(tally, event->stream, &event->as.level);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
         tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
@@ -246,6 +283,11 @@ enum status tally_take(struct tally *tally, const struct outcome *outcome, const
     }
     if (outcome->kind == OUTCOME_PHASE)
         take_phase(tally, outcome->as.phase.phase, outcome->watch_ns, sink);
+    if (outcome->kind == OUTCOME_CORRECTION) {
+        tally_correct(tally, &outcome->as.correction, outcome->watch_ns, sink);
+        if (outcome->as.correction.n_following == 0)
+            say_all(tally, outcome->watch_ns, sink);
+    }
     if (outcome->kind == OUTCOME_EVENT)
         take_event(tally, outcome, sink);
     return STATUS_OK;

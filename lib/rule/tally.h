@@ -45,8 +45,8 @@ struct tally_setup {
 
 struct tally;
 
-/* About 6 MiB a stream, all of it now. STATUS_BAD_ARGUMENT for a setup that exposure_create refuses or
- * without criteria; STATUS_NO_MEMORY. The caller owns *out. */
+/* About 30 MiB a stream, all of it now (continuous sound: 11). STATUS_BAD_ARGUMENT for a setup that
+ * exposure_create refuses or without criteria; STATUS_NO_MEMORY. The caller owns *out. */
 enum status tally_create(const struct tally_setup *setup, struct tally **out);
 void tally_destroy(struct tally *tally);
 /* Takes one outcome; what it says goes to the sink, after the outcome itself, at its time. */

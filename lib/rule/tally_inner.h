@@ -3,6 +3,7 @@
  *   tally.c       create, and what is said
  *   tally_take.c  what is summed, and what counts as said
  *   tally_law.c   by which loss law levels are moved
+ *   tally_correct.c  sums made again, since a person has said whose impulses are
  */
 #ifndef RULE_TALLY_INNER_H
 #define RULE_TALLY_INNER_H
@@ -10,11 +11,26 @@
 #include "level/quieting.h"
 #include "rule/tally.h"
 #include "rule/tally_channel.h"
+#include "rule/tally_fill.h"
 #include "rule/tally_fit.h"
 #include "rule/tally_limits.h"
 #include "rule/tally_quieting.h"
 #include "rule/tally_together.h"
 #include "rule/tally_warning.h"
+
+#define TALLY_MAX_KEPT                                                                                       \
+    131072u /* impulses of a job that can be counted again, on all channels of the stream */
+
+/* What the sums need of an impulse. */
+struct tally_kept {
+    int64_t time_ns;
+    uint64_t counter, order; /* order: among those of all streams */
+    double range_m, t90_s, positive_impulse_pa_s;
+    uint32_t run;
+    int16_t sel_db, peak_db, peak_to_peak_db, rms90_db, band_db[LEVEL_MAX_BANDS]; /* 0.01 dB */
+    uint8_t channel, n_bands, whose;
+    bool refused, relative, clipped, overlapped, weak, beside, quieting_on;
+};
 
 /* One stream's sums. */
 struct sums {
@@ -29,7 +45,11 @@ struct sums {
     struct tally_said falling;
     /* Of each criterion against the zone, in this job: by ours alone, and with the others. */
     struct tally_said said[CRITERIA_MAX], said_together[CRITERIA_MAX];
-    uint64_t n_findings; /* said in this run */
+    uint64_t n_findings;         /* said in this run */
+    struct exposure *before_job; /* as it was when the job began; for impulses only */
+    struct tally_kept *kept;     /* [TALLY_MAX_KEPT], owned; the same */
+    uint32_t n_kept, n_beyond;   /* of the job; beyond: not kept */
+    bool corrected;              /* some of them just now */
 };
 
 struct tally {
@@ -41,7 +61,8 @@ struct tally {
     char job[IMPULSE_JOB_SIZE];
     int64_t job_ns; /* since when it is open, or none is */
     bool quieting_on;
-    bool silent; /* being rebuilt */
+    bool silent;     /* being rebuilt */
+    uint64_t n_kept; /* impulses, of all streams */
     uint32_t run;
     uint64_t n_exposures, n_sources; /* said in this run */
     int64_t said_minute;
@@ -49,7 +70,20 @@ struct tally {
 
 /* From the source to the channel; NAN where unknown. */
 double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channel);
-void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse);
+/* Counts an impulse in the sums, if it belongs there; whether it does. */
+bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impulse, double range_m,
+               bool quieting_on);
+/* Keeps it, so that it can be counted again. */
+void tally_keep(struct tally *tally, uint32_t stream, uint32_t run, uint64_t counter,
+                const struct impulse *impulse);
+void tally_correct(struct tally *tally, const struct correction_outcome *correction, int64_t watch_ns,
+                   const struct outcome_sink *sink);
+/* False where no distance or no zone is known. */
+bool tally_zone_distance(const struct tally *tally, uint32_t i, const struct exposure_outcome *exposure,
+                         struct zone_distance *out);
+void tally_say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
+                       const struct finding_outcome *finding, struct tally_said *said,
+                       const struct outcome_sink *sink);
 void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level);
 void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns);
 

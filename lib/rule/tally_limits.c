@@ -5,8 +5,6 @@
 #include <stdio.h>
 #include <string.h>
 
-#define LIMIT_PASSED "limit passed"
-
 void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria)
 {
     memset(limits, 0, sizeof *limits);
@@ -70,12 +68,23 @@ void tally_limits_push(struct tally_limits *limits, const struct impulse *impuls
     }
 }
 
+void tally_limits_recount(struct tally_limits *limits)
+{
+    for (uint32_t i = 0; i < limits->n; i++)
+        limits->limits[i].tally = (struct zone_tally){0};
+}
+
+void tally_clause(const struct criterion *criterion, char out[FLOW_TEXT_SIZE])
+{
+    snprintf(out, FLOW_TEXT_SIZE, "%s, %s", criterion->set, criterion->name);
+}
+
 static void fill(const struct criterion *criterion, const char *code, enum zone_grade grade, const char *job,
                  struct finding_outcome *out)
 {
     *out = (struct finding_outcome){0};
     snprintf(out->code, sizeof out->code, "%s", code);
-    snprintf(out->clause, sizeof out->clause, "%s, %s", criterion->set, criterion->name);
+    tally_clause(criterion, out->clause);
     snprintf(out->job, sizeof out->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
     snprintf(out->grade, sizeof out->grade, "%s", zone_grade_text(grade));
 }
@@ -92,7 +101,7 @@ void tally_limits_set_said(struct tally_limits *limits, const struct criteria *c
                            const struct finding_outcome *finding, const struct tally_said *said)
 {
     for (uint32_t i = 0; i < limits->n; i++)
-        if (is_finding(&criteria->items[limits->limits[i].criterion], LIMIT_PASSED, finding))
+        if (is_finding(&criteria->items[limits->limits[i].criterion], TALLY_LIMIT_PASSED, finding))
             limits->limits[i].said = *said;
 }
 
@@ -110,7 +119,7 @@ struct tally_said *tally_limits_next(struct tally_limits *limits, const struct c
         if (verdict.grade < ZONE_INDICATIVE || verdict.grade <= one->said.grade)
             continue;
         const struct criterion *criterion = &criteria->items[one->criterion];
-        fill(criterion, LIMIT_PASSED, verdict.grade, job, out);
+        fill(criterion, TALLY_LIMIT_PASSED, verdict.grade, job, out);
         snprintf(out->detail, sizeof out->detail,
                  "%llu of %llu impulses over %.1f dB (%s, re %s) at %.0f m, the highest %.1f dB%s",
                  (unsigned long long)verdict.n_over, (unsigned long long)verdict.n, one->limit.limit_db,

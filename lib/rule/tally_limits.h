@@ -9,7 +9,8 @@
 #include <stdint.h>
 
 #define TALLY_MAX_LIMITS 16
-#define TALLY_ZONE_TOO_SMALL "zone too small" /* the code of its finding */
+#define TALLY_LIMIT_PASSED "limit passed"
+#define TALLY_ZONE_TOO_SMALL "zone too small"
 
 /* The strongest finding of the job so far about one thing. */
 struct tally_said {
@@ -34,6 +35,10 @@ struct tally_limits {
 void tally_limits_reset(struct tally_limits *limits, const struct criteria *criteria);
 /* A new job begins: nothing was passed in it yet. */
 void tally_limits_begin_job(struct tally_limits *limits);
+/* What was counted is counted again; what was said stays. */
+void tally_limits_recount(struct tally_limits *limits);
+/* What a finding about the criterion has as its clause. */
+void tally_clause(const struct criterion *criterion, char out[FLOW_TEXT_SIZE]);
 
 /* How levels move from the channel to the limit's range. */
 struct tally_move {

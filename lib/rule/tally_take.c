@@ -9,29 +9,25 @@ double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channe
     return tally->setup.range_m[stream - 1][channel - 1];
 }
 
-void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impulse *impulse)
+bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impulse, double range_m,
+               bool quieting_on)
 {
     struct sums *sums = &tally->sums[stream - 1];
     struct exposure_sound sound;
-    if (tally->setup.sound != SOUND_IMPULSIVE || impulse->channel < 1 || impulse->channel > FLOW_MAX_CHANNELS)
-        return; /* in the levels of its seconds it is counted already */
     struct tally_channel *channel = &sums->channels[impulse->channel - 1];
-    double range_m = tally_range_m(tally, stream, impulse->channel);
     bool counts = tally_channel_counts(channel, impulse);
-    if (counts)
-        tally_fit_push(tally->fit, stream, range_m, impulse);
     if (counts && impulse->beside)
         tally_channel_push(channel, impulse);
     if (impulse->whose != IMPULSE_OURS || impulse->beside)
-        return; /* of a blow that counts the reference channel has the level */
+        return counts; /* of a blow that counts the reference channel has the level */
     sums->changed = true;
     if (!counts) {
         sums->channel = sums->channel ? sums->channel : impulse->channel;
-        return;
+        return false;
     }
     exposure_of_impulse(impulse, impulse->n_bands, impulse->band_sel_db, range_m, &sound);
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)
-        return;
+        return counts;
     sums->channel = impulse->channel;
     tally_channel_push(channel, impulse);
     const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
@@ -41,9 +37,10 @@ void tally_take_impulse(struct tally *tally, uint32_t stream, const struct impul
     tally_limits_push(&sums->limits, impulse, &move);
     tally_warnings_push(&sums->warnings, impulse, &move);
     struct quieting_impulse quieted = {
-        .on = tally->quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
+        .on = quieting_on, .sel_db = impulse->sel_db, .energy_kj = NAN, .n_bands = impulse->n_bands};
     memcpy(quieted.band_db, impulse->band_sel_db, sizeof quieted.band_db);
     (void)quieting_push(&sums->quieting, &quieted); /* a level that is not finite says nothing of it */
+    return counts;
 }
 
 void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level)
@@ -73,6 +70,9 @@ void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
         exposure_begin_job(sums->exposure);
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
             tally_channel_begin_job(&sums->channels[c]);
+        if (sums->before_job)
+            exposure_copy(sums->exposure, sums->before_job);
+        sums->n_kept = sums->n_beyond = 0;
         tally_limits_begin_job(&sums->limits);
         quieting_reset(&sums->quieting);
         sums->falling = (struct tally_said){ZONE_NOTHING, ""};

@@ -40,6 +40,12 @@ void tally_warnings_phase(struct tally_warnings *warnings, enum phase phase, int
         warnings->items[i].trend = (struct trend){0};
 }
 
+void tally_warnings_recount(struct tally_warnings *warnings)
+{
+    for (uint32_t i = 0; i < warnings->n; i++)
+        warnings->items[i].trend = (struct trend){0};
+}
+
 void tally_warnings_push(struct tally_warnings *warnings, const struct impulse *impulse,
                          const struct tally_move *move)
 {

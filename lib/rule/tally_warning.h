@@ -43,6 +43,8 @@ void tally_warnings_reset(struct tally_warnings *warnings, const struct criteria
                           double zone_edge_m, double length_s);
 /* Any phase of the watch: a soft start begins, goes on or is over. */
 void tally_warnings_phase(struct tally_warnings *warnings, enum phase phase, int64_t watch_ns);
+/* The impulses of the job are pushed again. */
+void tally_warnings_recount(struct tally_warnings *warnings);
 void tally_warnings_push(struct tally_warnings *warnings, const struct impulse *impulse,
                          const struct tally_move *move);
 /* The strongest warning, and in words; empty where there is none. */

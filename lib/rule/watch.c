@@ -21,6 +21,11 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     struct watch *watch = calloc(1, sizeof *watch);
     if (!watch)
         return STATUS_NO_MEMORY;
+    watch->heard = calloc(WATCH_MAX_HEARD, sizeof *watch->heard);
+    if (!watch->heard) {
+        free(watch);
+        return STATUS_NO_MEMORY;
+    }
     watch->setup = *setup;
     watch->permit = setup->permit;
     watch->run = 1;
@@ -33,6 +38,8 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
 
 void watch_destroy(struct watch *watch)
 {
+    if (watch)
+        free(watch->heard);
     free(watch);
 }
 
@@ -99,7 +106,7 @@ static void set_recent(struct watch *watch, const struct event *event)
 static void complete(struct watch *watch, struct event *event)
 {
     if (event->kind == EVENT_IMPULSE)
-        source_mark_impulse(watch, event->stream, &event->as.impulse);
+        source_mark_impulse(watch, event);
     if (event->kind == EVENT_NOTE) {
         event->as.note.known_ns = event->known_ns;
         if (event->as.note.occurred_ns == 0)

@@ -3,6 +3,8 @@
  *   watch.c          create, push, advance: time, and what is due when
  *   watch_note.c     what people enter
  *   watch_contact.c  calls, sightings, verdicts: contacts and their episodes
+ *   watch_whose.c    what a person says of whose impulses these are
+ *   watch_chain.c    the train of an impulse that a person names
  *   watch_source.c   what the source does, as said and as heard, and what departs from the permit
  *   watch_effort.c   who is on watch, what was heard, how much of the pre-watch is done
  *   watch_phase.c    the table of phases and triggers, and the reasons
@@ -56,9 +58,11 @@ struct source {
     struct blows reference[WATCH_MAX_STREAMS]; /* by each stream's reference channel */
     double reference_m[WATCH_MAX_STREAMS];     /* its range; 0 before its first blow */
     char impulse_id[FLOW_ID_SIZE];
-    uint32_t n_unsaid;               /* impulses since the last silence that nobody has spoken for */
-    bool heard_in_phase;             /* since the source began to sound */
-    bool contradicted;               /* a finding about the present contradiction has been made */
+    uint32_t n_unsaid;   /* impulses since the last silence that nobody has spoken for */
+    bool heard_in_phase; /* since the source began to sound */
+    bool contradicted;   /* a finding about the present contradiction has been made */
+    char contradiction[FLOW_ID_SIZE],
+        contradicting[FLOW_ID_SIZE]; /* the last such finding, and its impulse */
     bool too_long;                   /* a finding about the present soft start has been made */
     int64_t soft_start_ns, quiet_ns; /* when the soft start began, when silence did; -1 */
     enum phase before_break;
@@ -69,6 +73,19 @@ struct source {
     uint32_t n_impulses;
     int64_t on_ns; /* when it was last said to sound after silence; -1 */
     struct whose whose[WATCH_MAX_CHANNELS];
+};
+
+#define WATCH_MAX_HEARD 65536u /* impulses that a person may speak of */
+
+/* An impulse that was heard. */
+struct heard {
+    int64_t time_ns, struck_ns; /* struck: when its sound left the source (rule/blows.h) */
+    uint64_t counter;
+    uint32_t run;
+    float level_db; /* NAN where it has none */
+    uint8_t stream, channel, whose;
+    bool beside; /* of the reference channel */
+    bool named;  /* it is of the train that a note is about, which is being taken */
 };
 
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
@@ -103,12 +120,13 @@ struct watch {
     const struct outcome_sink *sink; /* of the call in progress */
     int64_t now_ns;
     uint32_t run;
-    uint64_t counters[OUTCOME_FINDING + 1];
+    uint64_t counters[OUTCOME_CORRECTION + 1];
 
     enum phase phase;
     int64_t phase_since_ns;
     struct why phase_why;
     char phase_id[FLOW_ID_SIZE];
+    char finding_id[FLOW_ID_SIZE]; /* the last one's */
     char released_by[NOTE_NAME_SIZE];
     char release_id[FLOW_ID_SIZE];
     struct why recent; /* the event that is being taken, as a reason; empty when a timer is */
@@ -117,6 +135,9 @@ struct watch {
 
     struct effort effort;
     struct source source;
+    struct heard *heard; /* [WATCH_MAX_HEARD], a ring, owned */
+    uint64_t n_heard;    /* in all */
+    uint64_t job_heard;  /* of them before the job */
     struct contacts contacts;
 
     struct advice_key keys[STATION_COUNT];
@@ -133,6 +154,7 @@ void why_add_contact(struct why *why, const struct contact *contact);
 void watch_say_event(struct watch *watch, const struct event *event);
 void watch_say_contact(struct watch *watch, struct contact *contact);
 void watch_say_phase(struct watch *watch, enum phase phase, const struct why *why);
+void watch_say_correction(struct watch *watch, const struct correction_outcome *correction);
 void watch_say_finding(struct watch *watch, const char *code, const char *grade, const struct why *why);
 /* Gives the advice to the station; it becomes the station's newest. */
 void watch_say_advice(struct watch *watch, const struct advice_outcome *advice);
@@ -165,7 +187,7 @@ bool source_sounds(enum phase phase);
 void source_note(struct watch *watch, const struct note *note);
 void source_job(struct watch *watch, const struct note *note);
 /* Whose impulse it is, and of which job: before the event goes out. */
-void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *impulse);
+void source_mark_impulse(struct watch *watch, struct event *event);
 void source_take_impulse(struct watch *watch, const struct event *event);
 void source_settle(struct watch *watch); /* silence, and a soft start that is too long */
 int64_t source_due_ns(const struct watch *watch);
@@ -174,6 +196,18 @@ int64_t source_break_over_ns(const struct watch *watch);
 /* A stop for a contact ends by time while the source still sounds: it stays, until the source stops. */
 void source_keep_stop(struct watch *watch, const struct contact *contact);
 void source_enter_phase(struct watch *watch, enum phase from, enum phase to); /* findings, times */
+
+/* watch_whose.c */
+/* The place of a channel among all; unknown ones share the first's. */
+size_t whose_place(uint32_t stream, uint32_t channel);
+void whose_keep(struct watch *watch, const struct event *event, double level_db, int64_t struck_ns);
+/* watch_chain.c: names the impulses of the same channel that keep the rhythm and the level of that one, as
+ * far back and on as they can be followed. */
+void whose_name_train(struct watch *watch, uint64_t token);
+/* An impulse in the ring, and the oldest that it holds. */
+struct heard *whose_heard(const struct watch *watch, uint64_t token);
+uint64_t whose_oldest(const struct watch *watch);
+void whose_note(struct watch *watch, const struct note *note);
 
 /* watch_contact.c */
 void contact_take_call(struct watch *watch, const struct event *event);

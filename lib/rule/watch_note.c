@@ -97,6 +97,9 @@ void note_take(struct watch *watch, const struct note *note)
     case NOTE_JOB:
         source_job(watch, note);
         break;
+    case NOTE_WHOSE:
+        whose_note(watch, note);
+        break;
     case NOTE_WEATHER:
     case NOTE_QUIETING: /* the tally's */
     case NOTE_MARK:

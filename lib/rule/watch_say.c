@@ -92,12 +92,20 @@ void watch_say_phase(struct watch *watch, enum phase phase, const struct why *wh
 void watch_say_finding(struct watch *watch, const char *code, const char *grade, const struct why *why)
 {
     struct outcome outcome;
-    char id[FLOW_ID_SIZE];
     start_outcome(watch, OUTCOME_FINDING, &outcome);
     snprintf(outcome.as.finding.code, sizeof outcome.as.finding.code, "%s", code);
     snprintf(outcome.as.finding.grade, sizeof outcome.as.finding.grade, "%s", grade);
     memcpy(outcome.as.finding.detail, why->text, sizeof why->text);
     FILL_WHY(&outcome.as.finding, why);
+    give(watch, &outcome, watch->finding_id);
+}
+
+void watch_say_correction(struct watch *watch, const struct correction_outcome *correction)
+{
+    struct outcome outcome;
+    char id[FLOW_ID_SIZE];
+    start_outcome(watch, OUTCOME_CORRECTION, &outcome);
+    outcome.as.correction = *correction;
     give(watch, &outcome, id);
 }
 

@@ -79,6 +79,7 @@ void source_job(struct watch *watch, const struct note *note)
     if (strcmp(note->answer, "open") == 0) {
         snprintf(source->job, sizeof source->job, "%.31s", note->job);
         source->n_impulses = 0;
+        watch->job_heard = watch->n_heard;
     } else if (strcmp(source->job, note->job) == 0)
         source->job[0] = '\0';
     else
@@ -121,20 +122,32 @@ static void follow_reference(struct watch *watch, uint32_t stream, struct impuls
         impulse->whose = IMPULSE_UNKNOWN;
 }
 
-void source_mark_impulse(struct watch *watch, uint32_t stream, struct impulse *impulse)
+void source_mark_impulse(struct watch *watch, struct event *event)
 {
     struct source *source = &watch->source;
-    /* Levels of channels cannot be compared: each has its own trains. Unknown ones share the first's. */
-    size_t place = is_placed(stream, impulse) ? (stream - 1) * FLOW_MAX_CHANNELS + impulse->channel - 1 : 0;
+    struct impulse *impulse = &event->as.impulse;
+    /* Levels of channels cannot be compared: each has its own trains. */
+    struct whose *whose = &source->whose[whose_place(event->stream, impulse->channel)];
     const struct whose_said said = {.on = source_sounds(source->said),
                                     .job = *source->job != '\0',
                                     .on_ns = source->on_ns,
                                     .said_ns = source->said_ns};
     const struct whose_impulse heard = {
         .time_ns = impulse->time_ns, .level_db = level_of(impulse), .expected_ns = -1};
-    impulse->whose = whose_take(&source->whose[place], &said, &heard);
-    follow_reference(watch, stream, impulse);
+    impulse->whose = whose_take(whose, &said, &heard);
+    follow_reference(watch, event->stream, impulse);
+    whose_keep(watch, event, heard.level_db,
+               blow_struck_ns(impulse->time_ns, range_of(watch, event->stream, impulse),
+                              watch->setup.sound_speed_m_s));
     snprintf(impulse->job, sizeof impulse->job, "%s", source->job);
+}
+
+/* A person may say later that the impulse was another's. */
+static void keep_contradiction(struct watch *watch)
+{
+    struct source *source = &watch->source;
+    memcpy(source->contradiction, watch->finding_id, sizeof source->contradiction);
+    memcpy(source->contradicting, source->impulse_id, sizeof source->contradicting);
 }
 
 static void find_contradiction(struct watch *watch, bool of_job)
@@ -158,6 +171,7 @@ static void find_contradiction(struct watch *watch, bool of_job)
     why_add_cause(&why, source->said_id);
     snprintf(code, sizeof code, "source heard while %s", said);
     watch_say_finding(watch, code, of_job ? "firm" : "indicative", &why);
+    keep_contradiction(watch);
 }
 
 static void find_during_stop(struct watch *watch)
@@ -175,6 +189,7 @@ static void find_during_stop(struct watch *watch)
     if (lead)
         why_add_contact(&why, lead);
     watch_say_finding(watch, "source heard during a stop", "firm", &why);
+    keep_contradiction(watch);
 }
 
 void source_take_impulse(struct watch *watch, const struct event *event)

@@ -36,8 +36,7 @@ static struct whose_train *find_owner(struct whose *whose, enum whose_owner owne
 static const struct whose_train no_train = {
     .slow_s = NAN, .slow_db = NAN, .first_db = NAN, .ours_then_db = NAN};
 
-/* A free place, or that of the train, not ours, that was heard longest ago. */
-static struct whose_train *new_train(struct whose *whose, enum whose_owner owner)
+struct whose_train *whose_new_train(struct whose *whose, enum whose_owner owner)
 {
     struct whose_train *oldest = NULL;
     for (uint32_t i = 0; i < WHOSE_MAX_TRAINS; i++) {
@@ -97,7 +96,8 @@ static void forget(struct whose *whose, int64_t now_ns)
 {
     for (uint32_t i = 0; i < WHOSE_MAX_TRAINS; i++) {
         struct whose_train *train = &whose->trains[i];
-        if (train->owner != OWNER_OURS && now_ns - train->time_ns[0] > time_from_s(REMEMBERED_S))
+        if (train->owner != OWNER_OURS && !train->told &&
+            now_ns - train->time_ns[0] > time_from_s(REMEMBERED_S))
             train->owner = OWNER_NONE;
     }
 }
@@ -112,7 +112,7 @@ static void note_levels(struct whose_train *train, double level, double ours_db)
 static void compare(struct whose_train *ours, struct whose_train *other)
 {
     double level = whose_train_level_db(other), ours_db = whose_train_level_db(ours);
-    if (!(fabs(level - ours_db) < 1000))
+    if (other->told || !(fabs(level - ours_db) < 1000))
         return;
     if (!isfinite(other->first_db) || !isfinite(other->ours_then_db)) {
         note_levels(other, level, ours_db);
@@ -126,7 +126,7 @@ static void compare(struct whose_train *ours, struct whose_train *other)
     if (level < ours_db - FADED_DB || (ours_grown && !grown && level < ours_db - ALIKE_DB)) {
         other->owner = OWNER_OTHERS;
         note_levels(other, level, ours_db);
-    } else if (level > ours_db + WHOSE_BELOW_DB && grown) {
+    } else if (level > ours_db + WHOSE_BELOW_DB && grown && !ours->told) {
         other->owner = OWNER_OURS;
         ours->owner = OWNER_OTHERS;
         note_levels(ours, ours_db, level);
@@ -139,7 +139,7 @@ static void compare_all(struct whose *whose, int64_t now_ns)
         struct whose_train *ours = find_owner(whose, OWNER_OURS), *train = &whose->trains[i];
         if (!ours)
             return;
-        if (train->owner == OWNER_RIVAL && silent(ours, now_ns) && !silent(train, now_ns)) {
+        if (train->owner == OWNER_RIVAL && !ours->told && silent(ours, now_ns) && !silent(train, now_ns)) {
             train->owner = OWNER_OURS;
             ours->owner = OWNER_NONE;
         }
@@ -225,7 +225,7 @@ static void form_beside(struct whose *whose, struct whose_train *ours, const str
         into = ours;
     bool beside = !near || (share >= 0.7 && n >= ENOUGH_BESIDE && fabs(off) > ALIKE_DB);
     if (!into && !overdue && beside) {
-        into = new_train(whose, owner_beside(ours, off));
+        into = whose_new_train(whose, owner_beside(ours, off));
         into->first_db = level;
         into->ours_then_db = whose_train_level_db(ours);
     }
@@ -258,7 +258,7 @@ static void form(struct whose *whose, const struct whose_said *said)
     if (into)
         into->slow_s = NAN; /* learnt anew */
     else
-        into = new_train(whose, said->on ? OWNER_OURS : said->job ? OWNER_UNSETTLED : OWNER_OTHERS);
+        into = whose_new_train(whose, said->on ? OWNER_OURS : said->job ? OWNER_UNSETTLED : OWNER_OTHERS);
     take_loose(whose, into, n, places);
 }
 
@@ -319,7 +319,7 @@ static enum impulse_whose take_unsaid(struct whose *whose, const struct whose_sa
 static bool adopt(struct whose *whose, struct whose_train *train, const struct whose_impulse *impulse)
 {
     struct whose_train *ours = find_owner(whose, OWNER_OURS);
-    if ((ours && ours->n >= ESTABLISHED) ||
+    if (train->told || (ours && ours->n >= ESTABLISHED) ||
         !longer_than(train, impulse->time_ns - whose->on_ns, WAIT_INTERVALS))
         return false;
     if (ours)
@@ -341,7 +341,9 @@ static enum impulse_whose take_as_others(struct whose *whose, struct whose_train
     if (phase == WHOSE_OFF_RHYTHM && maybe_ours) {
         return take_loosely(whose, said, impulse, IMPULSE_OURS);
     }
-    bool sure = phase == WHOSE_IN_RHYTHM || !maybe_ours;
+    /* Of one that a person has named, its level is enough where it begins again after a rest. */
+    bool known = train->told && fabs(impulse->level_db - train->slow_db) <= ALIKE_DB;
+    bool sure = phase == WHOSE_IN_RHYTHM || !maybe_ours || (known && phase == WHOSE_NO_RHYTHM);
     return add_to(train, impulse, sure ? IMPULSE_OTHERS : IMPULSE_OURS);
 }
 
@@ -358,7 +360,7 @@ static enum impulse_whose take_said(struct whose *whose, const struct whose_said
     if (best)
         return add_to(best, impulse, IMPULSE_OURS);
     if (!ours)
-        return add_to(new_train(whose, OWNER_OURS), impulse, IMPULSE_OURS);
+        return add_to(whose_new_train(whose, OWNER_OURS), impulse, IMPULSE_OURS);
     bool maybe = in_range(ours, impulse->level_db) || at_liberty(ours, said, impulse->time_ns);
     return take_loosely(whose, said, impulse, maybe ? IMPULSE_OURS : IMPULSE_UNKNOWN);
 }
@@ -378,7 +380,7 @@ enum impulse_whose whose_take(struct whose *whose, const struct whose_said *said
     forget(whose, impulse->time_ns);
     if (said->on && expected(impulse)) {
         struct whose_train *ours = find_owner(whose, OWNER_OURS);
-        decision = add_to(ours ? ours : new_train(whose, OWNER_OURS), impulse, IMPULSE_OURS);
+        decision = add_to(ours ? ours : whose_new_train(whose, OWNER_OURS), impulse, IMPULSE_OURS);
     } else
         decision = said->on ? take_said(whose, said, impulse) : take_unsaid(whose, said, impulse);
     compare_all(whose, impulse->time_ns);

@@ -34,6 +34,7 @@ enum whose_owner {
 
 struct whose_train {
     enum whose_owner owner;
+    bool told;                   /* a person has said whose it is: what is heard changes it no more */
     bool adopted;                /* ours only because nothing else was heard when ours should have been */
     uint32_t n;                  /* impulses taken in all */
     int64_t time_ns[WHOSE_KEPT]; /* the newest first */
@@ -75,6 +76,13 @@ void whose_reset(struct whose *whose);
 /* Decides and learns. Impulses whose times run backwards are decided by level alone. */
 enum impulse_whose whose_take(struct whose *whose, const struct whose_said *said,
                               const struct whose_impulse *impulse);
+
+/* A person has said whose these impulses of one train are, the last n of them, oldest first: they make a
+ * train of their own and belong to no other. Another train that is ours goes on to count, as nobody has said
+ * that it is not. (whose_train.c) */
+void whose_tell(struct whose *whose, uint32_t n, const int64_t *times_ns, const double *levels_db, bool ours);
+/* A free place, or that of the train, not ours, that was heard longest ago; with nothing in it. */
+struct whose_train *whose_new_train(struct whose *whose, enum whose_owner owner);
 
 /* ---- one train (whose_train.c) */
 /* How an impulse fits a train: the logarithm of the likelihood of its time and level (per second and dB), and

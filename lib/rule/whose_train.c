@@ -277,3 +277,56 @@ uint32_t whose_find_train(const struct whose *whose, uint32_t places[WHOSE_MAX_L
     }
     return best;
 }
+
+/* ---- what people say */
+static bool among(int64_t time_ns, uint32_t n, const int64_t *times_ns)
+{
+    for (uint32_t i = 0; i < n; i++)
+        if (times_ns[i] == time_ns)
+            return true;
+    return false;
+}
+
+static void start_anew(struct whose_train *train, enum whose_owner owner)
+{
+    *train = (struct whose_train){
+        .owner = owner, .slow_s = NAN, .slow_db = NAN, .first_db = NAN, .ours_then_db = NAN};
+}
+
+/* Of the train what is not among those. */
+static void take_away(struct whose_train *train, uint32_t n, const int64_t *times_ns)
+{
+    const struct whose_train was = *train;
+    start_anew(train, was.owner);
+    train->told = was.told;
+    train->adopted = was.adopted;
+    for (uint32_t i = kept(&was); i-- > 0;)
+        if (!among(was.time_ns[i], n, times_ns))
+            whose_train_add(train, was.time_ns[i], was.level_db[i]);
+    if (train->n == kept(&was))
+        *train = was; /* none of them was in it */
+    else if (train->n == 0)
+        train->owner = OWNER_NONE;
+}
+
+void whose_tell(struct whose *whose, uint32_t n, const int64_t *times_ns, const double *levels_db, bool ours)
+{
+    uint32_t left = 0;
+    for (uint32_t i = 0; i < WHOSE_MAX_TRAINS; i++) {
+        struct whose_train *train = &whose->trains[i];
+        if (train->owner != OWNER_NONE)
+            take_away(train, n, times_ns);
+        if (ours && train->owner == OWNER_OURS)
+            train->owner = OWNER_RIVAL;
+    }
+    for (uint32_t i = 0; i < whose->n_loose; i++)
+        if (!among(whose->loose_ns[i], n, times_ns)) {
+            whose->loose_ns[left] = whose->loose_ns[i];
+            whose->loose_db[left++] = whose->loose_db[i];
+        }
+    whose->n_loose = left;
+    struct whose_train *told = whose_new_train(whose, ours ? OWNER_OURS : OWNER_OTHERS);
+    told->told = true;
+    for (uint32_t i = 0; i < n; i++)
+        whose_train_add(told, times_ns[i], levels_db[i]);
+}

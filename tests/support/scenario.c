@@ -84,7 +84,7 @@ static void take(void *context, const struct outcome *outcome)
     player->n_outcomes++;
     if (outcome->kind == OUTCOME_EVENT)
         return;
-    if (outcome->kind == OUTCOME_CONTACT)
+    if (outcome->kind == OUTCOME_CONTACT || outcome->kind == OUTCOME_CORRECTION)
         return;
     if (player->writes_all) {
         char text[1024];

@@ -271,6 +271,27 @@ static bool play_impulses(struct player *player, const char *text)
     return true;
 }
 
+/* NAME says impulse N is another's | is ours [since CLOCK] */
+static bool play_whose(struct player *player, const char *who, const char *rest)
+{
+    struct note note;
+    char id[FLOW_ID_SIZE];
+    unsigned number;
+    int used = 0;
+    if (sscanf(rest, "says impulse %u is %n", &number, &used) != 1 || !used)
+        return false;
+    note_reset(&note, NOTE_WHOSE);
+    flow_id(player->run, 1, "impulse", number, id);
+    const char *since = strstr(rest + used, " since ");
+    set(player, &note, "person", who);
+    set(player, &note, "impulse", id);
+    set(player, &note, "answer", player_after(rest + used, "ours") ? "ours" : "other");
+    if (since && !player_read_clock(since + 7, &note.occurred_ns))
+        player_complain(player, "cannot read the time in '%s'", rest);
+    push_note(player, &note);
+    return true;
+}
+
 /* What the work does: source, job, the program itself. */
 static bool play_work(struct player *player, const char *text)
 {
@@ -317,7 +338,8 @@ void player_event(struct player *player, const char *text)
         return;
     if (sscanf(text, "%63s %n", who, &used) == 1 && used &&
         (play_sign(player, who, text + used) || play_sighting(player, who, text + used) ||
-         play_answer(player, who, text + used) || play_word(player, who, text + used)))
+         play_answer(player, who, text + used) || play_whose(player, who, text + used) ||
+         play_word(player, who, text + used)))
         return;
     player_complain(player, "cannot read the event '%s'", text);
 }

@@ -155,7 +155,7 @@ static void check_timer(struct player *player, const struct watch_view *view, co
 }
 
 /* "timer NAME stands at CLOCK [held by "..."]", "contact N is GRADE, STATE", "release possible",
- * "crew is still told: ...", "N contacts" */
+ * "crew is still told: ...", "N contacts", "N blows of ours" */
 void player_check(struct player *player, const char *text)
 {
     static struct watch_view view;
@@ -191,6 +191,9 @@ void player_check(struct player *player, const char *text)
     } else if (sscanf(text, "%u contacts%n", &n, &used) == 1 && used) {
         if (view.n_contacts != n)
             player_complain(player, "there are %u contacts", view.n_contacts);
+    } else if (sscanf(text, "%u blows of ours%n", &n, &used) == 1 && used) {
+        if (view.n_impulses != n)
+            player_complain(player, "there are %u blows of ours", view.n_impulses);
     } else if (strcmp(text, "release possible") == 0 || strcmp(text, "release not possible") == 0) {
         if (view.release_possible != (strcmp(text, "release possible") == 0))
             player_complain(player, "it is the other way round");
