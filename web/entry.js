@@ -1,7 +1,8 @@
 // What people enter: one small form a kind of note. Field names are those of POST /api/note.
-import { $, el, post, remember, setText } from "/page.js";
+import { $, el, post, remember, setText, utc } from "/page.js";
 
 const SOURCE_STATES = ["off", "soft start", "full power", "hold", "reduced", "stopped", "vibro", "drilling", "line turn", "test"];
+let impulses = () => []; // the last ones, newest first
 const select = (name, label, options) => ({ name, label, options });
 const number = (name, label, more = {}) => ({ name, label, type: "number", step: "any", min: 0, ...more });
 
@@ -19,6 +20,10 @@ const KINDS = {
   Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "Open or close", ["open", "close"])] },
   Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 })] },
   Quieting: { kind: "quieting", fields: () => [select("answer", "The measure is", ["on", "off"]), { name: "text", label: "Which", maxlength: 100 }] },
+  Whose: {
+    kind: "whose", person: true,
+    fields: () => [select("impulse", "Impulse", impulses().map((i) => ({ value: i.id, text: utc(i.time_s) + ", " + (i.sel_db === null ? "no level" : i.sel_db.toFixed(1) + " dB") + ", " + i.whose }))), select("answer", "Its train is", ["other", "ours"])],
+  },
   Remark: { kind: "remark", fields: () => [{ name: "text", label: "Remark", required: true, maxlength: 200, wide: true }] },
   Mark: { kind: "mark", fields: () => [{ name: "text", label: "What was it?", required: true, maxlength: 200, wide: true }] },
 };
@@ -80,7 +85,7 @@ export async function send(note, form) {
 
 export function field(spec) {
   const { label, options, wide, ...attributes } = spec;
-  const input = options ? el("select", { name: spec.name }, ...options.map((word) => el("option", { text: word, value: word }))) : el("input", { autocomplete: "off", ...attributes });
+  const input = options ? el("select", { name: spec.name }, ...options.map((word) => el("option", typeof word === "string" ? { text: word, value: word } : word))) : el("input", { autocomplete: "off", ...attributes });
   return el("label", { class: (wide ? "wide " : "") + (spec.type === "checkbox" ? "tick" : "") }, el("span", { text: label }), input);
 }
 
@@ -103,7 +108,8 @@ export function chooseEntry(name, permit, focus) {
   if (focus) form.querySelector("input, select").focus();
 }
 
-export function startEntry(permit) {
+export function startEntry(permit, lastImpulses) {
+  impulses = lastImpulses;
   startName();
   if (!$("kinds").firstChild)
     for (const name of Object.keys(KINDS)) $("kinds").append(el("button", { type: "button", class: "plain", text: name, onclick: () => chooseEntry(name, permit(), true) }));

@@ -190,7 +190,7 @@ function startForms() {
     const who = person(sign.querySelector("button")), watch = sign.elements.watch.value;
     if (who !== null) send({ kind: "sign-on", person: who, watch, ...(watch === "crew" ? { station: sign.elements.station.value } : {}) }, sign);
   });
-  startEntry(() => site);
+  startEntry(() => site, () => (link.state ? link.state.impulses : []));
   document.addEventListener("keydown", (event) => {
     if (event.target.closest("input, select, textarea") || event.ctrlKey || event.altKey || event.metaKey || remembered("keys", "on") !== "on") return;
     if (event.key === "s") {
