@@ -137,6 +137,9 @@ static void read_airguns(struct group_reader *group, void *out)
     group_number(group, "shot_interval_s", READER_REQUIRED, 1, 3600, &airguns->shot_interval_s);
     group_number(group, "source_energy_level_db", READER_REQUIRED, 100, 260,
                  &airguns->source_energy_level_db);
+    group_number(group, "late_burst_energy_level_db", READER_OPTIONAL, 100, 240,
+                 &airguns->late_burst_energy_level_db);
+    group_number(group, "reverberation_s", READER_OPTIONAL, 0, 30, &airguns->reverberation_s);
 }
 
 static void read_echosounder(struct group_reader *group, void *out)

@@ -44,7 +44,7 @@ const struct scene_kind kind_fish_grunts = {
 static void make_knock(const struct kind_order *order, struct random *random, struct emission *out)
 {
     (void)order;
-    static const struct sound_part parts[] = {{.amplitude = 1, .frequency_hz = 400, .width_s = 0.002},
+    static const struct sound_part parts[] = {{.amplitude = 1, .frequency_hz = 400, .width_s = 0.0035},
                                               {.amplitude = 0.7, .frequency_hz = 1100, .width_s = 0.001},
                                               {.amplitude = 0.4, .frequency_hz = 2700, .width_s = 0.0005}};
     recipe_pulse(&out->sound, SOUND_DAMPED, parts, 3);

@@ -2,6 +2,7 @@
  * practice, no source. */
 #include "scene/recipe.h"
 #include "base/units.h"
+#include "scene/sound_noise.h"
 #include <math.h>
 
 void recipe_partials(struct sound *sound, const double *amplitude, uint32_t n)
@@ -156,6 +157,36 @@ void recipe_shot(double rate_hz, struct sound *out)
     sound_measure_length(out);
     sound_normalize_exposure(out);
     sound_limit_band(out, rate_hz);
+}
+
+/* Cavitation where the ghosts of an array meet: 10 to 20 kHz, 7 to 14 ms after the peak, rising for 5 to 6 ms
+ * and then dropping, alike in energy and not in waveform (Landro et al. 2013, Geophysics 78, P19;
+ * Khodabandeloo et al. 2017). Reverberation for seconds: common practice, no source. */
+void recipe_shot_tail(double burst_s, double reverberation_s, uint64_t seed, struct sound *out)
+{
+    *out = (struct sound){.shape = SOUND_NOISE, .n_parts = 5, .seed = seed};
+    out->parts[0] = (struct sound_part){.amplitude = burst_s > 0,
+                                        .frequency_hz = 14500,
+                                        .delay_s = 0.008,
+                                        .width_s = 0.83 / 9000,
+                                        .rise_s = 0.0055,
+                                        .decay_s = 3e-4};
+    for (uint32_t k = 1; k < 5; k++) {
+        double hz = 25 * pow(2, k);
+        out->parts[k] = (struct sound_part){.amplitude = reverberation_s > 0 ? pow(0.6, k) : 0,
+                                            .frequency_hz = hz,
+                                            .delay_s = 0.05,
+                                            .width_s = 0.83 / (0.8 * hz),
+                                            .rise_s = 0.15,
+                                            .decay_s = fmax(1e-3, reverberation_s / 6.9)};
+    }
+    double sum = 0;
+    for (uint32_t k = 1; k < 5; k++)
+        sum += out->parts[k].amplitude * out->parts[k].amplitude * sound_noise_part_s(out, k);
+    for (uint32_t k = 1; k < 5 && sum > 0; k++)
+        out->parts[k].amplitude *= sqrt(0.1 / sum);
+    out->parts[0].amplitude *= sqrt(burst_s / sound_noise_part_s(out, 0));
+    sound_measure_length(out);
 }
 
 void recipe_ping(double frequency_hz, double ping_s, struct sound *out)

@@ -62,6 +62,9 @@ uint32_t recipe_between(struct random *random, uint32_t low, uint32_t high);
 /* A blow of a pile, a shot of an airgun array: exposure 1. A ping: mean square 1. A snap: peak 1. */
 void recipe_blow(double rate_hz, struct sound *out);
 void recipe_shot(double rate_hz, struct sound *out);
+/* What follows a shot, beside a sound of exposure 1: the burst of cavitating ghosts, exposure burst_s; what
+ * comes back from the sea, exposure 0.1. */
+void recipe_shot_tail(double burst_s, double reverberation_s, uint64_t seed, struct sound *out);
 void recipe_ping(double frequency_hz, double ping_s, struct sound *out);
 void recipe_snap(double rate_hz, struct random *random, struct sound *out);
 

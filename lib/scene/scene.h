@@ -79,6 +79,8 @@ struct scene_airguns {
     struct scene_track track;
     double start_s, end_s, shot_interval_s;
     double source_energy_level_db;
+    double late_burst_energy_level_db; /* of the burst at 10 to 20 kHz behind each shot; 0: none */
+    double reverberation_s;            /* in which what comes back from the sea falls by 60 dB; 0: none */
 };
 
 struct scene_echosounder {

@@ -206,6 +206,13 @@ static bool next_shot(struct schedule *schedule, struct emission *out)
         return false;
     recipe_shot(schedule->scene->rate_hz, &out->sound);
     out->level_db = airguns->source_energy_level_db;
+    if (airguns->late_burst_energy_level_db > 0 || airguns->reverberation_s > 0) {
+        double burst_s = airguns->late_burst_energy_level_db > 0
+                             ? units_power_ratio(airguns->late_burst_energy_level_db - out->level_db)
+                             : 0;
+        recipe_shot_tail(burst_s, airguns->reverberation_s, mix(schedule->identity, out->number), &out->tail);
+        sound_limit_band(&out->tail, schedule->scene->rate_hz);
+    }
     out->amplitude = 1e-6 * units_amplitude_ratio(out->level_db);
     schedule->next_s = airguns->start_s + (double)out->number * airguns->shot_interval_s;
     return true;
@@ -281,6 +288,8 @@ double schedule_max_length_s(const struct schedule *schedule)
         return schedule->scene->echosounders[schedule->source].ping_s;
     if (schedule->kind == EMISSION_SNAP)
         return SNAP_LENGTH_S;
+    if (schedule->kind == EMISSION_SHOT)
+        return BLOW_LENGTH_S + 1.02 * schedule->scene->airguns[schedule->source].reverberation_s;
     if (schedule->kind != EMISSION_CALL && schedule->kind != EMISSION_SOUND)
         return BLOW_LENGTH_S;
     const struct scene_emitter *animal = emitter_of(schedule);

@@ -5,6 +5,7 @@
 #include "scene/kind.h"
 #include "scene/path.h"
 #include "scene/schedule.h"
+#include "scene/truth_ratio.h"
 #include <inttypes.h>
 #include <math.h>
 #include <stdlib.h>
@@ -53,11 +54,18 @@ static void write_place(struct writer *writer, struct scene_place place)
     number(writer, "z_m", place.z_m, 3);
 }
 
-/* Exposure and peak of what one hydrophone hears, from the samples. */
-static void write_heard(struct writer *writer, const struct emission *emission, uint32_t hydrophone)
+static const struct scene_kind *kind_of(const struct scene *scene, const struct emission *emission)
 {
-    double start_s, end_s, exposure = 0, peak = 0, rate_hz = writer->scene->rate_hz;
-    path_heard(&writer->sea, emission, hydrophone, &start_s, &end_s);
+    if (emission->kind == EMISSION_CALL)
+        return scene->animals[emission->source - 1].kind;
+    return emission->kind == EMISSION_SOUND ? scene->emitters[emission->source - 1].kind : NULL;
+}
+
+/* Exposure and peak of what one hydrophone hears between two times, from the samples. */
+static void measure(struct writer *writer, const struct emission *emission, uint32_t hydrophone,
+                    double start_s, double end_s, double *out_exposure, double *out_peak)
+{
+    double exposure = 0, peak = 0, rate_hz = writer->scene->rate_hz;
     uint64_t first = (uint64_t)floor(start_s * rate_hz), end = (uint64_t)ceil(end_s * rate_hz) + 1;
     for (uint64_t at = first; at < end; at += CHUNK) {
         uint32_t n = end - at < CHUNK ? (uint32_t)(end - at) : CHUNK;
@@ -70,12 +78,25 @@ static void write_heard(struct writer *writer, const struct emission *emission, 
             peak = fmax(peak, fabs(value));
         }
     }
+    *out_exposure = exposure;
+    *out_peak = peak;
+}
+
+static void write_heard(struct writer *writer, const struct emission *emission, uint32_t hydrophone)
+{
+    double start_s, end_s, exposure, peak;
+    path_heard(&writer->sea, emission, hydrophone, &start_s, &end_s);
+    measure(writer, emission, hydrophone, start_s, end_s, &exposure, &peak);
+    double ratio_db =
+        truth_ratio_db(writer->scene, kind_of(writer->scene, emission), emission, exposure, peak);
     text_append(&writer->text, "{");
     number(writer, "channel", hydrophone + 1, 0);
     number(writer, "start_s", start_s, 7);
     number(writer, "end_s", end_s, 7);
     number(writer, "sel_db", units_sel_db(exposure), 3);
     number(writer, "peak_db", units_peak_db(peak), 3);
+    if (isfinite(ratio_db))
+        number(writer, "snr_db", ratio_db, 2);
     close_object(writer);
 }
 
@@ -102,11 +123,50 @@ static void write_pulses(struct writer *writer, const struct emission *emission)
     text_append(&writer->text, "],");
 }
 
-static const struct scene_kind *kind_of(const struct scene *scene, const struct emission *emission)
+/* How snr_db is to be read, and how long its cell is. */
+static void write_ratio_kind(struct writer *writer, const struct scene_kind *kind)
 {
-    if (emission->kind == EMISSION_CALL)
-        return scene->animals[emission->source - 1].kind;
-    return emission->kind == EMISSION_SOUND ? scene->emitters[emission->source - 1].kind : NULL;
+    static const char *const words[] = {
+        [SNR_PULSE] = "pulse peak", [SNR_CELL] = "tone cell", [SNR_BAND] = "band energy"};
+    if (!kind || kind->snr == SNR_NONE)
+        return;
+    text_format(&writer->text, "\"snr\":\"%s\",", words[kind->snr]);
+    if (kind->snr == SNR_CELL)
+        number(writer, "cell_s", kind->cell_s, 4);
+}
+
+/* A sound that lasts: from its emitter's start to its end, by the middle of its first piece. */
+static void write_lasting(struct writer *writer, const struct emission *emission, double end_s)
+{
+    const struct scene_kind *kind = kind_of(writer->scene, emission);
+    double low_hz, high_hz, edge_s = emission->sound.taper * emission->sound.length_s / 2;
+    sound_band(&emission->sound, &low_hz, &high_hz);
+    text_append(&writer->text, "{");
+    number(writer, "source", emission->source, 0);
+    number(writer, "member", emission->member, 0);
+    text_format(&writer->text,
+                "\"number\":1,\"kind\":\"%s\",\"group\":\"%s\",\"class\":\"%s\",\"lasts\":true,", kind->name,
+                group_text(kind->group), kind->class);
+    number(writer, "start_s", emission->start_s, 7);
+    number(writer, "end_s", fmin(end_s, writer->scene->duration_s), 7);
+    number(writer, "low_hz", low_hz, 1);
+    number(writer, "high_hz", high_hz, 1);
+    number(writer, "source_level_db", emission->level_db, 3);
+    write_place(writer, scene_track_at(&emission->track, emission->start_s));
+    text_append(&writer->text, "\"heard\":[");
+    for (uint32_t i = 0; i < writer->scene->n_hydrophones; i++) {
+        double start_s, last_s, exposure, peak;
+        path_heard(&writer->sea, emission, i, &start_s, &last_s);
+        measure(writer, emission, i, start_s + edge_s, last_s - edge_s, &exposure, &peak);
+        text_append(&writer->text, i > 0 ? ",{" : "{");
+        number(writer, "channel", i + 1, 0);
+        number(writer, "start_s", start_s, 7);
+        number(writer, "end_s", fmin(end_s, writer->scene->duration_s) + start_s - emission->start_s, 7);
+        number(writer, "spl_db", units_spl_db(exposure / (last_s - start_s - 2 * edge_s)), 3);
+        close_object(writer);
+    }
+    text_append(&writer->text, "]}");
+    hand_on(writer);
 }
 
 static void write_emission(struct writer *writer, const struct emission *emission)
@@ -130,10 +190,22 @@ static void write_emission(struct writer *writer, const struct emission *emissio
                        : emission->kind == EMISSION_BLOW || emission->kind == EMISSION_SHOT;
     number(writer, energy ? "source_energy_level_db" : "source_level_db", emission->level_db, 3);
     write_place(writer, scene_track_at(&emission->track, emission->start_s));
+    write_ratio_kind(writer, kind);
     write_pulses(writer, emission);
     write_all_heard(writer, emission);
     close_object(writer);
     hand_on(writer);
+}
+
+/* Its pieces begin before the emitter's end, and the last goes on for its whole length. */
+static double lasting_end_s(const struct scene *scene, const struct emission *emission)
+{
+    const struct scene_emitter *emitter = emission->kind == EMISSION_CALL
+                                              ? &scene->animals[emission->source - 1]
+                                              : &scene->emitters[emission->source - 1];
+    double spacing_s = emitter->kind->min_spacing_s, asked_s = emitter->end_s - emission->start_s;
+    return emission->start_s + spacing_s * fmax(1, ceil(asked_s / spacing_s)) - spacing_s +
+           emission->sound.length_s;
 }
 
 /* All emissions of one kind, source by source. */
@@ -148,6 +220,11 @@ static void write_kind(struct writer *writer, const char *key, enum emission_kin
         while (writer->status == STATUS_OK && schedule_next(&schedules[i], writer->emission)) {
             text_append(&writer->text, first ? "\n" : ",\n");
             first = false;
+            const struct scene_kind *what = kind_of(writer->scene, writer->emission);
+            if (what && what->lasts) {
+                write_lasting(writer, writer->emission, lasting_end_s(writer->scene, writer->emission));
+                break;
+            }
             write_emission(writer, writer->emission);
         }
     }
