@@ -13,9 +13,9 @@ OPTIMIZE = -O2 -ftree-vectorize
 endif
 
 PACKAGES = gcc make pkg-config portaudio19-dev libfftw3-dev libmicrohttpd-dev libsqlite3-dev libsndfile1-dev \
-	libconfig-dev libjansson-dev libsodium-dev libsystemd-dev
+	libconfig-dev libjansson-dev libsodium-dev libsystemd-dev libgps-dev
 TEST_PACKAGES = binutils procps git libcmocka-dev libasound2-dev libasound2-plugins python3 python3-numpy python3-scipy python3-selenium \
-	chromium chromium-driver sqlite3 openssl curl clang libclang-rt-14-dev
+	chromium chromium-driver sqlite3 openssl curl gpsd clang libclang-rt-14-dev
 
 WARNINGS = -Wall -Wextra -Wshadow -Wconversion -Wstrict-prototypes -Wmissing-prototypes -Wvla
 HARDENING = -D_FORTIFY_SOURCE=2 -fstack-protector-strong -fPIE
@@ -23,7 +23,7 @@ CPPFLAGS += -Ilib -Idaemon -Itests -I$(BUILD)/generated -D_GNU_SOURCE -DHUSHWATC
 CFLAGS += -std=c11 -g $(OPTIMIZE) $(WARNINGS) $(HARDENING) $(SANITIZE) -ffile-prefix-map=$(CURDIR)=. -pthread -MMD -MP
 LDFLAGS += $(SANITIZE) -pthread -pie -Wl,-z,relro,-z,now
 LIB_LIBS = -lfftw3f -lsodium -ljansson -lm
-DAEMON_LIBS = -lmicrohttpd -lsqlite3 -lsndfile -lconfig -lsystemd $(LIB_LIBS)
+DAEMON_LIBS = -lmicrohttpd -lsqlite3 -lsndfile -lconfig -lsystemd -lgps $(LIB_LIBS)
 
 MAINS = daemon/hushwatchd.c daemon/hushwatch.c daemon/capture/hushwatch-capture.c
 LIB_SOURCES = $(wildcard lib/*.c lib/*/*.c)

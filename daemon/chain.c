@@ -35,7 +35,8 @@ struct chain {
     struct watcher *watcher;
     struct board *board;
     struct http *http;
-    struct timed_note *notes; /* of all timetables, in watch time */
+    struct position_feed *feed; /* NULL where the settings name none */
+    struct timed_note *notes;   /* of all timetables, in watch time */
     unsigned n_notes;
 };
 
@@ -275,6 +276,7 @@ static enum status create_watcher(struct chain *chain)
                                   .recorder = chain->recorder,
                                   .outbox = chain->outbox,
                                   .board = chain->board,
+                                  .feed = chain->feed,
                                   .run = chain->run,
                                   .zero_unix_ns = chain->zero_unix_ns,
                                   .n_streams = chain->n_streams,
@@ -286,6 +288,23 @@ static enum status create_watcher(struct chain *chain)
     if (status == STATUS_OK)
         watcher_show(chain->watcher, chain->restored.last_ns);
     return status;
+}
+
+static void take_position(void *context, const struct position *position)
+{
+    const struct chain *chain = context;
+    merge_position(chain->merge, position);
+}
+
+/* A scan hears what was recorded: where the vessel is now says nothing of it. */
+static enum status create_feed(struct chain *chain)
+{
+    const struct position_settings *settings = &chain->setup.site->position;
+    if (chain->setup.scan || settings->feed == FEED_NONE)
+        return STATUS_OK;
+    const struct position_feed_setup setup = {
+        .address = settings->address, .port = settings->port, .take = take_position, .context = chain};
+    return position_feed_create(&setup, &chain->feed);
 }
 
 static void set_committed(void *context, const struct ledger_line *lines, size_t n)
@@ -325,6 +344,8 @@ enum status chain_start(struct chain *chain, struct problems *problems)
     status = recorder_create(chain->outbox, chain->run, chain->zero_unix_ns, count_channels(chain),
                              &chain->recorder);
     if (status == STATUS_OK)
+        status = create_feed(chain);
+    if (status == STATUS_OK)
         status = create_watcher(chain);
     if (status == STATUS_OK)
         status = start_pages(chain, problems);
@@ -338,6 +359,8 @@ enum status chain_start(struct chain *chain, struct problems *problems)
     }
     if (status == STATUS_OK)
         status = watcher_start(chain->watcher, &chain->mark);
+    if (status == STATUS_OK && chain->feed)
+        status = position_feed_start(chain->feed);
     for (uint32_t i = 0; i < chain->n_streams && status == STATUS_OK; i++)
         status = stream_start(chain->streams[i], chain->merge);
     return status;
@@ -353,6 +376,7 @@ enum status chain_stop(struct chain *chain, uint64_t *out_lost)
     *out_lost = 0;
     http_stop(chain->http);
     chain->http = NULL;
+    position_feed_stop(chain->feed);
     if (chain->merge)
         merge_stop(chain->merge);
     for (uint32_t i = 0; i < chain->n_streams; i++)
@@ -376,6 +400,7 @@ void chain_destroy(struct chain *chain)
     uint64_t lost;
     chain_stop(chain, &lost);
     watcher_destroy(chain->watcher);
+    position_feed_destroy(chain->feed);
     for (uint32_t i = 0; i < chain->n_streams; i++)
         stream_destroy(chain->streams[i]);
     merge_destroy(chain->merge);

@@ -25,7 +25,9 @@ struct merge {
     uint32_t first_note, n_notes;
     uint64_t notes_put, notes_taken; /* numbers of the note last put and last taken */
     uint64_t note_counters[NOTE_QUEUE];
-    int64_t now_ns; /* the time that the watch has been given */
+    bool has_position;
+    struct position position; /* the newest that was not taken */
+    int64_t now_ns;           /* the time that the watch has been given */
     uint32_t left_behind;
     bool stopped;
 };
@@ -140,6 +142,15 @@ void merge_note_taken(struct merge *merge, uint64_t counter)
     pthread_mutex_unlock(&merge->lock);
 }
 
+void merge_position(struct merge *merge, const struct position *position)
+{
+    pthread_mutex_lock(&merge->lock);
+    merge->position = *position;
+    merge->has_position = true;
+    pthread_cond_broadcast(&merge->changed);
+    pthread_mutex_unlock(&merge->lock);
+}
+
 /* How far time may pass: to the slowest stream; past a live one that lags by more than MERGE_LAG_NS. */
 static int64_t reachable_ns(struct merge *merge, bool *out_ended)
 {
@@ -210,6 +221,17 @@ static bool pop_note(struct merge *merge, struct event *out)
     return true;
 }
 
+static bool pop_position(struct merge *merge, struct event *out)
+{
+    if (!merge->has_position)
+        return false;
+    *out = (struct event){.kind = EVENT_POSITION, .known_ns = merge->now_ns};
+    out->as.position = merge->position;
+    out->as.position.occurred_ns = merge->now_ns;
+    merge->has_position = false;
+    return true;
+}
+
 enum status merge_take(struct merge *merge, int64_t wait_ns, struct event *out_event, int64_t *out_ns)
 {
     int64_t until_ns = clock_monotonic_ns() + wait_ns;
@@ -218,7 +240,8 @@ enum status merge_take(struct merge *merge, int64_t wait_ns, struct event *out_e
     for (;;) {
         bool ended;
         int64_t reach = reachable_ns(merge, &ended);
-        if (pop_note(merge, out_event) || pop_event(merge, reach, out_event)) {
+        if (pop_note(merge, out_event) || pop_position(merge, out_event) ||
+            pop_event(merge, reach, out_event)) {
             status = STATUS_OK;
             break;
         }

@@ -1,5 +1,6 @@
-/* Brings the events of all streams, the notes and the passing of time into the one order in which the watch
- * takes them: (known time, stream, kind, counter), and never further than the slowest stream has come.
+/* Brings the events of all streams, the notes, the positions and the passing of time into the one order in
+ * which the watch takes them: (known time, stream, kind, counter), and never further than the slowest stream
+ * has come.
  *
  * Stream threads put, the watch thread takes. A full queue makes its stream wait. Only a live stream may be
  * left behind, when it lags by more than 0.5 s; its later events then take the watch's present time. */
@@ -28,6 +29,10 @@ void merge_end(struct merge *merge, uint32_t stream);
 /* From any thread: a note, to be taken at the watch's present time. Waits until the watch has it, at most one
  * second: then STATUS_TIMEOUT (it may still be taken). out_counter makes the entry's id. */
 enum status merge_note(struct merge *merge, const struct note *note, uint64_t *out_counter);
+
+/* From any thread: where something is now, to be taken at the watch's present time. Waits for nobody: a newer
+ * one takes the place of one that was not taken yet. */
+void merge_position(struct merge *merge, const struct position *position);
 
 /* From the watch's thread. Waits (at most wait_ns) until time can pass; then gives one event, or how far time
  * has passed. STATUS_OK with out_event filled; STATUS_TIMEOUT with *out_ns the time that all streams have

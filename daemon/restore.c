@@ -131,6 +131,7 @@ static enum status take_levels(struct rebuilding *rebuilding, const struct entry
         outcome.stream = levels->stream;
         *event = (struct event){.kind = EVENT_LEVEL, .stream = levels->stream, .known_ns = watch_ns};
         event->as.level = levels->seconds[i];
+        watch_set_range(rebuilding->watch, event); /* of the minute's end */
         status = tally_take(rebuilding->tally, &outcome, &(struct outcome_sink){drop_sums, NULL});
     }
     if (status != STATUS_OK)

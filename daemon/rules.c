@@ -45,6 +45,29 @@ static double sound_speed_m_s(const struct site *site)
     return sea_sound_speed_m_s(source->temperature_c, source->salinity, source->depth_m / 2, 45);
 }
 
+static void fill_ranges(const struct site *site, struct ranges_setup *out)
+{
+    *out = (struct ranges_setup){.moves = site->position.moves,
+                                 .oldest_s = site->position.oldest_s,
+                                 .source_offset_m = {site->position.offset_m[0], site->position.offset_m[1]},
+                                 .has_source = site->source.place.known,
+                                 .latitude_deg = site->source.place.latitude_deg,
+                                 .longitude_deg = site->source.place.longitude_deg};
+    for (uint32_t i = 0; i < site->n_streams; i++) {
+        const struct place_settings *place = &site->streams[i].place;
+        struct ranges_stream *stream = &out->streams[i];
+        stream->has_position = place->known;
+        stream->latitude_deg = place->latitude_deg;
+        stream->longitude_deg = place->longitude_deg;
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
+            const struct channel_settings *channel = &site->streams[i].channels[c];
+            stream->place_m[c][0] = channel->x_m;
+            stream->place_m[c][1] = channel->y_m;
+            stream->place_m[c][2] = channel->z_m;
+        }
+    }
+}
+
 enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                const uint32_t *n_channels, struct watch **out)
 {
@@ -63,6 +86,7 @@ enum status rules_create_watch(const struct rules *rules, const struct site *sit
         for (uint32_t c = 0; c < n_channels[i]; c++)
             if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
                 setup.listening[i] |= 1U << c;
+    fill_ranges(site, &setup.ranges);
     return watch_create(&setup, out);
 }
 
@@ -115,7 +139,8 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++) {
             const struct channel_settings *channel = &site->streams[i].channels[c];
             setup->role[i][c] = channel->calibration.role;
-            setup->range_m[i][c] = channel_range_m(channel);
+            bool follows = site->streams[i].place.known || site->position.moves == RANGES_ARRAY;
+            setup->range_m[i][c] = follows ? (double)NAN : channel_range_m(channel);
         }
     enum status status = tally_create(setup, out_tally);
     free(setup);

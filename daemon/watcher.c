@@ -21,9 +21,9 @@ struct watcher {
     struct hearing_view *hearing; /* 200 kB, and read by nobody else */
     struct watch_view *view;
     unsigned next_note;
-    uint64_t note_counter;
+    uint64_t note_counter, position_counter;
     uint32_t map_changes[SITE_MAX_STREAMS];
-    bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind;
+    bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind, said_silent;
     bool changed; /* something that people should see at once */
     int64_t published_ns, beat_ns;
     pthread_t thread;
@@ -143,6 +143,15 @@ static void push_entered_note(struct watcher *watcher, struct event *event)
     merge_note_taken(watcher->setup.merge, watcher->note_counter);
 }
 
+/* Most positions are like the one before, and are not recorded. */
+static void push_position(struct watcher *watcher, struct event *event)
+{
+    if (!watch_wants_position(watcher->setup.watch, &event->as.position))
+        return;
+    event->counter = ++watcher->position_counter;
+    push(watcher, event);
+}
+
 static void say_health(struct watcher *watcher, int64_t watch_ns, uint32_t stream, bool ok, const char *text)
 {
     keep_status(watcher, recorder_health(watcher->setup.recorder, watch_ns, stream, ok, text));
@@ -184,6 +193,20 @@ static void look_at_stream(struct watcher *watcher, uint32_t i, int64_t watch_ns
     if (state.status != STATUS_OK && !watcher->said_ended[i]) {
         watcher->said_ended[i] = true;
         say_health(watcher, watch_ns, i + 1, false, status_text(state.status));
+    }
+}
+
+static void look_at_feed(struct watcher *watcher, int64_t watch_ns)
+{
+    struct position_feed_state state;
+    if (!watcher->setup.feed)
+        return;
+    position_feed_get_state(watcher->setup.feed, &state);
+    if (state.silent)
+        hearing_add_fault(watcher->hearing, "NO POSITION: %s", state.problem);
+    if (state.silent != watcher->said_silent) {
+        watcher->said_silent = state.silent;
+        say_health(watcher, watch_ns, 0, !state.silent, state.silent ? state.problem : "positions come");
     }
 }
 
@@ -243,6 +266,7 @@ static void publish(struct watcher *watcher, int64_t watch_ns)
     for (uint32_t i = 0; i < watcher->setup.n_streams; i++)
         look_at_stream(watcher, i, watch_ns);
     look_at_outbox(watcher, watch_ns);
+    look_at_feed(watcher, watch_ns);
     uint32_t left_behind = merge_get_left_behind(watcher->setup.merge);
     if ((left_behind != 0) != watcher->was_left_behind) {
         watcher->was_left_behind = left_behind != 0;
@@ -287,6 +311,8 @@ static enum status step(struct watcher *watcher)
         push_due_notes(watcher, now_ns);
         if (event.kind == EVENT_NOTE)
             push_entered_note(watcher, &event);
+        else if (event.kind == EVENT_POSITION)
+            push_position(watcher, &event);
         else
             push(watcher, &event);
     } else {

@@ -4,6 +4,7 @@
 #define WATCHER_H
 
 #include "base/status.h"
+#include "feed/position.h"
 #include "http/board.h"
 #include "ledger/outbox.h"
 #include "merge.h"
@@ -24,7 +25,8 @@ struct watcher_setup {
     struct tally *tally; /* NULL: nothing is summed */
     struct recorder *recorder;
     struct outbox *outbox;
-    struct board *board; /* NULL: nobody looks */
+    struct board *board;        /* NULL: nobody looks */
+    struct position_feed *feed; /* NULL: none */
     uint32_t run;
     int64_t zero_unix_ns; /* UTC of watch time zero */
     uint32_t n_streams;

@@ -65,8 +65,9 @@ static const char *const from_words[] = {
 static const char *const form_words[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train"};
 
 static const char *const event_kinds[] = {
-    [EVENT_RUN] = "run",         [EVENT_UNHEARD] = "unheard", [EVENT_LEVEL] = "level",
-    [EVENT_IMPULSE] = "impulse", [EVENT_CALL] = "call",       [EVENT_NOTE] = "note",
+    [EVENT_RUN] = "run",           [EVENT_UNHEARD] = "unheard", [EVENT_LEVEL] = "level",
+    [EVENT_IMPULSE] = "impulse",   [EVENT_CALL] = "call",       [EVENT_NOTE] = "note",
+    [EVENT_POSITION] = "position",
 };
 
 void flow_id(uint32_t run, uint32_t stream, const char *kind, uint64_t counter, char out[FLOW_ID_SIZE])

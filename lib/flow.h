@@ -1,7 +1,7 @@
 /* What travels between stages, and nothing else: block, event, outcome.
  *
  *   input -> block -> listen -> event -> watch -> outcome -> record -> ledger and pages
- *                     notes, run marks --^
+ *          notes, positions, run marks --^
  *
  * Every event has a place in one order, (known_ns, stream, kind, counter), in which the watch takes it. */
 #ifndef FLOW_H
@@ -10,6 +10,7 @@
 #include "call/call.h"
 #include "level/impulse.h"
 #include "level/level.h"
+#include "place/position.h"
 #include "place/whereabouts.h"
 #include "rule/note.h"
 #include <stdbool.h>
@@ -59,11 +60,19 @@ struct run_mark {
     int64_t outage_end_ns;
 };
 
-enum event_kind { EVENT_RUN, EVENT_UNHEARD, EVENT_LEVEL, EVENT_IMPULSE, EVENT_CALL, EVENT_NOTE };
+enum event_kind {
+    EVENT_RUN,
+    EVENT_UNHEARD,
+    EVENT_LEVEL,
+    EVENT_IMPULSE,
+    EVENT_CALL,
+    EVENT_NOTE,
+    EVENT_POSITION
+};
 
 struct event {
     enum event_kind kind;
-    uint32_t stream;  /* 0 for what did not come from a stream: notes, run marks */
+    uint32_t stream;  /* 0 for what did not come from a stream: notes, positions, run marks */
     uint32_t run;     /* from 1 */
     uint64_t counter; /* per run, stream and kind, from 1: with them it makes the entry's id */
     int64_t known_ns; /* watch time at which it became known: the last sample needed to emit it */
@@ -74,6 +83,7 @@ struct event {
         struct impulse impulse;
         struct call call;
         struct note note;
+        struct position position;
     } as;
 };
 

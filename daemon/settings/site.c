@@ -181,6 +181,7 @@ static void read_stream(struct group_reader *group, const char *folder, struct s
     snprintf(stream->format, sizeof stream->format, "%s", format_words[format]);
     stream->n_channels = (uint32_t)channels;
     stream->real_pace = pace == 0;
+    place_settings_read(group, &stream->place);
     read_files(group, folder, stream);
     read_channels(group, stream);
     check_stream(group, stream);
@@ -241,6 +242,15 @@ static void read_evidence(struct group_reader *root, struct site *site)
     group_done(&contact);
 }
 
+/* Streams without a place of their own. */
+static unsigned count_free(const struct site *site)
+{
+    unsigned n = 0;
+    for (uint32_t i = 0; i < site->n_streams; i++)
+        n += !site->streams[i].place.known;
+    return n;
+}
+
 static void set_defaults(const char *path, struct site *site)
 {
     *site = (struct site){.contact_gap_s = 300,
@@ -273,6 +283,7 @@ enum status site_load(const char *path, struct problems *problems, struct site *
         read_evidence(&root, out);
         source_settings_read(&root, out->folder, &out->source);
         read_streams(&root, out);
+        position_settings_read(&root, &out->source.place, count_free(out), &out->position);
         group_done(&root);
     }
     reader_close(&reader);

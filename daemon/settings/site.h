@@ -6,6 +6,7 @@
 #include "base/text.h"
 #include "flow.h"
 #include "level/calibration.h"
+#include "settings/position.h"
 #include "settings/reader.h"
 #include "settings/source.h"
 #include <stdbool.h>
@@ -22,8 +23,9 @@ struct channel_settings {
     char serial[64];
     char certificate_date[SITE_DATE_SIZE]; /* of the last calibration, "2026-03-01"; empty where not stated */
     char due_date[SITE_DATE_SIZE];         /* until which it holds */
-    double x_m, y_m,
-        z_m; /* from the source's reference point: ahead, to starboard, down; NAN where unknown */
+    /* From the source's reference point: ahead, to starboard, down. Of a stream with a place of its own: from
+     * there, north, east, down. Carried by a vessel: from its antenna. NAN where unknown. */
+    double x_m, y_m, z_m;
 };
 
 /* Slant range of the channel's place from the source's reference point, m; NAN where unknown. */
@@ -40,7 +42,8 @@ struct stream_settings {
     char path[SITE_PATH_SIZE]; /* pcm: a named pipe or "-"; scene: its file */
     uint32_t n_files;
     char files[SITE_MAX_FILES][SITE_PATH_SIZE]; /* recording: one or several, as one stream */
-    bool real_pace; /* recording, scene: at the pace of the clock, not as fast as possible */
+    bool real_pace;              /* recording, scene: at the pace of the clock, not as fast as possible */
+    struct place_settings place; /* where its hydrophones stay */
     struct channel_settings channels[FLOW_MAX_CHANNELS];
 };
 
@@ -55,6 +58,7 @@ struct site {
     uint32_t n_stations;
     char stations[SITE_MAX_STATIONS][NOTE_NAME_SIZE]; /* crew stations that acknowledge for themselves */
     struct source_settings source;
+    struct position_settings position;
     uint32_t n_streams;
     struct stream_settings streams[SITE_MAX_STREAMS];
     double contact_gap_s;

@@ -33,6 +33,7 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     group_number(&group, "aperture_m", READER_OPTIONAL, 0, 200, &out->shape.aperture_m);
     group_number(&group, "main_hz", READER_OPTIONAL, 0, 1e6, &out->shape.main_hz);
     group_number(&group, "lobe_deg", READER_OPTIONAL, 0, 90, &out->shape.lobe_deg);
+    place_settings_read(&group, &out->place);
     out->shape.form = (enum source_form)form;
     out->sound = (enum criterion_sound)sound;
     out->n_others = others_read(&group, out->others);

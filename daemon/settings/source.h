@@ -8,13 +8,15 @@
 #include "level/criterion.h"
 #include "level/source.h"
 #include "level/together.h"
+#include "settings/position.h"
 #include "settings/reader.h"
 
 #define SOURCE_MAX_SETS 8
 
 struct source_settings {
     struct source_shape shape;
-    enum criterion_sound sound; /* impulsive or continuous: set, never guessed */
+    struct place_settings place; /* where it stays */
+    enum criterion_sound sound;  /* impulsive or continuous: set, never guessed */
     double loss_n_db, loss_n_spread_db;
     double temperature_c, salinity, depth_m; /* of the water, for absorption */
     double level_spread_db;                  /* standard deviation of calibration and place */

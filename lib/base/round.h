@@ -11,6 +11,7 @@
 #define ROUND_DECIMALS_HZ 1          /* 0.1 Hz */
 #define ROUND_DECIMALS_M 1           /* 0.1 m */
 #define ROUND_DECIMALS_DEG 1         /* 0.1 degree */
+#define ROUND_DECIMALS_M_S 2         /* 0.01 m/s */
 #define ROUND_DECIMALS_PROBABILITY 3 /* 0.001 */
 #define ROUND_DECIMALS_EVIDENCE 3    /* 0.001 of log-odds */
 #define ROUND_DECIMALS_KURTOSIS 2    /* 0.01 */

@@ -3,6 +3,7 @@
 #define LEVEL_IMPULSE_H
 
 #include "level/level.h"
+#include "place/position.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -33,6 +34,8 @@ struct impulse {
                     once */
     enum impulse_whose whose;   /* set by the watch */
     char job[IMPULSE_JOB_SIZE]; /* set by the watch; empty where no job is open */
+    double range_m; /* slant, from the source to the channel; set by the watch; NAN where unknown */
+    enum range_from range_from; /* set by the watch: how the range is known, or why not */
 };
 
 /* Takes away every level, since the channel cannot be trusted with them: times and durations stay. */

@@ -3,6 +3,7 @@
 #define LEVEL_LEVEL_H
 
 #include "level/moments.h"
+#include "place/position.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -22,6 +23,8 @@ struct level {
     uint32_t n_bands;                /* bands that the rate carries, from n = LEVEL_FIRST_BAND up */
     double band_db[LEVEL_MAX_BANDS]; /* SPL of each decidecade, dB re 1 uPa; NAN where not measured */
     bool relative;                   /* channel uncalibrated: dB re full scale */
+    double range_m;                  /* slant, from the source; set by the watch; NAN where unknown */
+    enum range_from range_from;      /* set by the watch: how the range is known, or why not */
 };
 
 #endif

@@ -46,6 +46,8 @@ static enum status impulse_body(const struct event *event, struct text *out)
     body_number(&body, "peak_db", impulse->peak_db, ROUND_DECIMALS_DB);
     body_number(&body, "peak_to_peak_db", impulse->peak_to_peak_db, ROUND_DECIMALS_DB);
     body_number(&body, "positive_impulse_pa_s", impulse->positive_impulse_pa_s, ROUND_DECIMALS_PA_S);
+    body_text_or_null(&body, "range_from", range_from_text(impulse->range_from));
+    body_number(&body, "range_m", impulse->range_m, ROUND_DECIMALS_M);
     body_bool(&body, "refused", impulse->refused);
     body_bool(&body, "relative", impulse->relative);
     body_number(&body, "rms90_db", impulse->rms90_db, ROUND_DECIMALS_DB);
@@ -106,8 +108,10 @@ static enum status note_body(const struct event *event, struct text *out)
     body_text_if_given(&body, "impulse", note->impulse);
     body_text_if_given(&body, "job", note->job);
     body_time(&body, "known_s", note->known_ns);
+    body_number_if_given(&body, "latitude_deg", note->latitude_deg, ROUND_DECIMALS_POSITION);
     if (note->leaving)
         body_bool(&body, "leaving", true);
+    body_number_if_given(&body, "longitude_deg", note->longitude_deg, ROUND_DECIMALS_POSITION);
     body_text(&body, "note", note_kind_text(note->kind));
     body_number_if_given(&body, "number", note->number, ROUND_DECIMALS_NUMBER);
     body_time(&body, "occurred_s", note->occurred_ns);
@@ -120,6 +124,24 @@ static enum status note_body(const struct event *event, struct text *out)
     body_text_if_given(&body, "verdict", note->verdict);
     body_number_if_given(&body, "visibility_m", note->visibility_m, ROUND_DECIMALS_M);
     body_text_if_given(&body, "watch", note->watch);
+    return body_end(&body);
+}
+
+static enum status position_body(const struct event *event, struct text *out)
+{
+    const struct position *position = &event->as.position;
+    struct body body;
+    body_begin(&body, out);
+    body_number(&body, "accuracy_m", position->accuracy_m, ROUND_DECIMALS_M);
+    body_number(&body, "course_deg", position->course_deg, ROUND_DECIMALS_DEG);
+    body_number(&body, "heading_deg", position->heading_deg, ROUND_DECIMALS_DEG);
+    body_id(&body, event->run, event->stream, "position", event->counter);
+    body_number(&body, "latitude_deg", position->latitude_deg, ROUND_DECIMALS_POSITION);
+    body_number(&body, "longitude_deg", position->longitude_deg, ROUND_DECIMALS_POSITION);
+    body_time(&body, "occurred_s", position->occurred_ns);
+    body_text(&body, "source", position_from_text(position->from));
+    body_number(&body, "speed_m_s", position->speed_m_s, ROUND_DECIMALS_M_S);
+    body_text(&body, "whose", position_of_text(position->of));
     return body_end(&body);
 }
 
@@ -138,6 +160,8 @@ static enum status event_body(const struct event *event, int64_t zero_unix_ns, s
         return call_body(event, out);
     case EVENT_NOTE:
         return note_body(event, out);
+    case EVENT_POSITION:
+        return position_body(event, out);
     }
     return STATUS_BAD_ARGUMENT;
 }

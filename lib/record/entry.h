@@ -30,8 +30,9 @@ struct entry {
  */
 enum status entry_body(const struct outcome *outcome, int64_t zero_unix_ns, struct text *out);
 
-/* The event behind the entry of an input kind (run, unheard, impulse, call, note); the watch is rebuilt from
- * these. watch_ns is the entry's time. STATUS_NOT_FOUND for a kind that is no input (level, phase, advice
+/* The event behind the entry of an input kind (run, unheard, impulse, call, note, position); the watch is
+ * rebuilt from these. watch_ns is the entry's time. STATUS_NOT_FOUND for a kind that is no input (level,
+ * phase, advice
  * ...); STATUS_BAD_FORMAT for a body that this program did not write. */
 enum status entry_event(const char *kind, const char *body, int64_t watch_ns, struct event *out);
 

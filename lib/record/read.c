@@ -132,6 +132,21 @@ static const char *note_word(int i)
     return note_kind_text((enum note_kind)i);
 }
 
+static const char *range_word(int i)
+{
+    return range_from_text((enum range_from)i);
+}
+
+static const char *of_word(int i)
+{
+    return position_of_text((enum position_of)i);
+}
+
+static const char *position_from_word(int i)
+{
+    return position_from_text((enum position_from)i);
+}
+
 static void read_run(struct reading *reading, struct run_mark *mark)
 {
     mark->outage_start_ns = read_time(reading, "outage_start_s");
@@ -187,6 +202,8 @@ static void read_impulse(struct reading *reading, struct impulse *impulse)
     impulse->beside = reading_bool(reading, "beside", false); /* not in ledgers of formats 1 and 2 */
     impulse->whose = (enum impulse_whose)read_word(reading, "whose", IMPULSE_UNKNOWN + 1, whose_word);
     reading_text(reading, "job", true, impulse->job, sizeof impulse->job);
+    impulse->range_m = reading_number(reading, "range_m", true, NAN);
+    impulse->range_from = (enum range_from)read_word(reading, "range_from", RANGE_FROM_COUNT, range_word);
 }
 
 static void read_call(struct reading *reading, struct call *call)
@@ -237,6 +254,23 @@ static void read_note(struct reading *reading, struct note *note)
     note->visibility_m = reading_number(reading, "visibility_m", false, NAN);
     note->calf = reading_bool(reading, "calf", false);
     note->leaving = reading_bool(reading, "leaving", false);
+    note->latitude_deg = reading_number(reading, "latitude_deg", false, NAN);
+    note->longitude_deg = reading_number(reading, "longitude_deg", false, NAN);
+}
+
+static void read_position(struct reading *reading, struct position *position)
+{
+    position->of = (enum position_of)read_word(reading, "whose", POSITION_OF_COUNT, of_word);
+    position->from =
+        (enum position_from)read_word(reading, "source", POSITION_FROM_COUNT, position_from_word);
+    position->latitude_deg = reading_number(reading, "latitude_deg", true, NAN);
+    position->longitude_deg = reading_number(reading, "longitude_deg", true, NAN);
+    position->heading_deg = reading_number(reading, "heading_deg", true, NAN);
+    position->course_deg = reading_number(reading, "course_deg", true, NAN);
+    position->speed_m_s = reading_number(reading, "speed_m_s", true, NAN);
+    position->accuracy_m = reading_number(reading, "accuracy_m", true, NAN);
+    position->occurred_ns = read_time(reading, "occurred_s");
+    reading->good = reading->good && position_check(position) == STATUS_OK;
 }
 
 /* Decimal digits up to `end`, at least one. */
@@ -276,7 +310,8 @@ void reading_id(struct reading *reading, const char *kind, uint32_t *out_run, ui
 
 static bool input_kind(const char *kind, enum event_kind *out)
 {
-    static const enum event_kind inputs[] = {EVENT_RUN, EVENT_UNHEARD, EVENT_IMPULSE, EVENT_CALL, EVENT_NOTE};
+    static const enum event_kind inputs[] = {EVENT_RUN,  EVENT_UNHEARD, EVENT_IMPULSE,
+                                             EVENT_CALL, EVENT_NOTE,    EVENT_POSITION};
     for (size_t i = 0; i < sizeof inputs / sizeof inputs[0]; i++)
         if (strcmp(kind, flow_event_kind_text(inputs[i])) == 0) {
             *out = inputs[i];
@@ -302,6 +337,9 @@ static void read_event(struct reading *reading, struct event *event)
         break;
     case EVENT_NOTE:
         read_note(reading, &event->as.note);
+        break;
+    case EVENT_POSITION:
+        read_position(reading, &event->as.position);
         break;
     case EVENT_LEVEL: /* not among the inputs */
         break;

@@ -71,6 +71,7 @@ static void round_impulse(struct impulse *impulse)
     to(&impulse->positive_impulse_pa_s, ROUND_DECIMALS_PA_S);
     for (uint32_t b = 0; b < impulse->n_bands && b < LEVEL_MAX_BANDS; b++)
         to(&impulse->band_sel_db[b], ROUND_DECIMALS_DB);
+    to(&impulse->range_m, ROUND_DECIMALS_M);
     clean(impulse->job);
 }
 
@@ -104,6 +105,19 @@ static void round_note(struct note *note)
     to(&note->bearing_deg, ROUND_DECIMALS_DEG);
     to(&note->sea_state, ROUND_DECIMALS_SEA_STATE);
     to(&note->visibility_m, ROUND_DECIMALS_M);
+    to(&note->latitude_deg, ROUND_DECIMALS_POSITION);
+    to(&note->longitude_deg, ROUND_DECIMALS_POSITION);
+}
+
+static void round_position(struct position *position)
+{
+    position->occurred_ns = time_round_us(position->occurred_ns);
+    to(&position->latitude_deg, ROUND_DECIMALS_POSITION);
+    to(&position->longitude_deg, ROUND_DECIMALS_POSITION);
+    to(&position->heading_deg, ROUND_DECIMALS_DEG);
+    to(&position->course_deg, ROUND_DECIMALS_DEG);
+    to(&position->speed_m_s, ROUND_DECIMALS_M_S);
+    to(&position->accuracy_m, ROUND_DECIMALS_M);
 }
 
 void entry_round(struct event *event)
@@ -128,6 +142,9 @@ void entry_round(struct event *event)
         break;
     case EVENT_NOTE:
         round_note(&event->as.note);
+        break;
+    case EVENT_POSITION:
+        round_position(&event->as.position);
         break;
     }
 }

@@ -51,7 +51,7 @@ const struct schema_object views_schema[] = {
         COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db") COLUMN("whose")
         COLUMN("relative") COLUMN("clipped") COLUMN("overlapped") COLUMN("weak") COLUMN("effective_s")
         COLUMN("kurtosis") COLUMN("window_s") COLUMN("positive_impulse_pa_s") COLUMN("bands")
-        COLUMN("refused") COLUMN("beside")),
+        COLUMN("refused") COLUMN("beside") COLUMN("range_m") COLUMN("range_from")),
     VIEW("correction",
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("whose") COLUMN("impulses") COLUMN("causes")),
     /* No kind: what the impulses of a job come to. */
@@ -96,7 +96,7 @@ const struct schema_object views_schema[] = {
         COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number") COLUMN("calf")
         COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN("verdict") COLUMN("advice")
         COLUMN("answer") COLUMN("impulse") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
-        COLUMN("text")),
+        COLUMN("text") COLUMN("latitude_deg") COLUMN("longitude_deg")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
         COLUMN("end_s") COLUMN("cause")),
@@ -113,7 +113,7 @@ const struct schema_object views_schema[] = {
         COLUMN("offset_s") COLUMN("source") COLUMN("reason")),
     VIEW("position",
         COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("heading_deg") COLUMN("course_deg")
-        COLUMN("speed_m_s") COLUMN("source")),
+        COLUMN("speed_m_s") COLUMN("source") COLUMN("whose") COLUMN("accuracy_m") COLUMN("occurred_s")),
     VIEW("stamp", COLUMN("first") COLUMN("last") COLUMN("text") COLUMN("signature") COLUMN("key")),
 };
 /* clang-format on */

@@ -8,13 +8,11 @@
 #include <string.h>
 
 static const char *const kind_words[NOTE_KIND_COUNT] = {
-    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off",
-    [NOTE_SIGHTING] = "sighting",   [NOTE_DISTANCE] = "distance",
-    [NOTE_VERDICT] = "verdict",     [NOTE_RELEASE] = "release",
-    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",
-    [NOTE_WEATHER] = "weather",     [NOTE_QUIETING] = "quieting",
-    [NOTE_WHOSE] = "whose",         [NOTE_MARK] = "mark",
-    [NOTE_REMARK] = "remark",       [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
+    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off", [NOTE_SIGHTING] = "sighting",
+    [NOTE_DISTANCE] = "distance",   [NOTE_VERDICT] = "verdict",   [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",           [NOTE_WEATHER] = "weather",
+    [NOTE_QUIETING] = "quieting",   [NOTE_WHOSE] = "whose",       [NOTE_POSITION] = "position",
+    [NOTE_MARK] = "mark",           [NOTE_REMARK] = "remark",     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
 
 enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
@@ -77,6 +75,9 @@ static const struct field fields[] = {
     {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
     {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
     {NUMBER(visibility_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {NUMBER(latitude_deg, -90, 90, ROUND_DECIMALS_POSITION), .allowed = "-90 to 90 degrees, north positive"},
+    {NUMBER(longitude_deg, -180, 180, ROUND_DECIMALS_POSITION),
+     .allowed = "-180 to 180 degrees, east positive"},
     {OTHER(calf, FIELD_FLAG), .allowed = "true, false"},
     {OTHER(leaving, FIELD_FLAG), .allowed = "true, false"},
     {OTHER(occurred_ns, FIELD_TIME), .allowed = "watch time in nanoseconds, not before 0"},
@@ -90,7 +91,9 @@ void note_reset(struct note *note, enum note_kind kind)
                           .distance_m = NAN,
                           .bearing_deg = NAN,
                           .sea_state = NAN,
-                          .visibility_m = NAN};
+                          .visibility_m = NAN,
+                          .latitude_deg = NAN,
+                          .longitude_deg = NAN};
 }
 
 static enum status set_text(const struct field *field, const char *value, char *out)
@@ -251,6 +254,10 @@ static const char *missing_of(const struct note *note)
         return !person ? "person" : !*note->impulse ? "impulse" : missing_of_answer(note);
     case NOTE_WEATHER:
         return isnan(note->sea_state) && isnan(note->visibility_m) ? "sea_state" : NULL;
+    case NOTE_POSITION:
+        return isnan(note->latitude_deg)    ? "latitude_deg"
+               : isnan(note->longitude_deg) ? "longitude_deg"
+                                            : NULL;
     case NOTE_MARK:
     case NOTE_REMARK:
         return !*note->text ? "text" : NULL;

@@ -27,6 +27,7 @@ enum note_kind {
                       curtain */
     NOTE_WHOSE,    /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
                       occurred_ns on; all of it in the job where that is not given */
+    NOTE_POSITION, /* latitude_deg, longitude_deg of the source */
     NOTE_MARK,     /* text */
     NOTE_REMARK,   /* text */
     NOTE_KIND_COUNT
@@ -54,6 +55,7 @@ struct note {
     double bearing_deg;
     double sea_state;
     double visibility_m;
+    double latitude_deg, longitude_deg; /* WGS84, north and east positive */
     bool calf;
     bool leaving; /* seen leaving the zone */
 };

@@ -176,7 +176,6 @@ static void say_source(struct tally *tally, uint32_t i, uint32_t channel, int64_
                                           .low_hz = 10,
                                           .high_hz = 2e4,
                                           .spread_db = tally->setup.level_spread_db,
-                                          .range_m = tally_range_m(tally, i + 1, channel),
                                           .off_axis_deg = NAN,
                                           .sound_speed_m_s = 1500};
     static const struct quieting none;
@@ -246,7 +245,8 @@ static void take_impulse(struct tally *tally, const struct outcome *outcome, con
     const struct impulse *impulse = &event->as.impulse;
     if (tally->setup.sound != SOUND_IMPULSIVE || impulse->channel < 1 || impulse->channel > FLOW_MAX_CHANNELS)
         return; /* in the levels of its seconds it is counted already */
-    double range_m = tally_range_m(tally, event->stream, impulse->channel);
+    double range_m =
+        tally_set_range(tally, event->stream, impulse->channel, impulse->range_m, impulse->range_from);
     tally_keep(tally, event->stream, outcome->run, event->counter, impulse);
     if (tally_sum(tally, event->stream, impulse, range_m, tally->quieting_on))
         tally_fit_push(tally->fit, event->stream, range_m, impulse);

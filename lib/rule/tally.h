@@ -2,6 +2,8 @@
  * criteria that the site chose, and says them as outcomes of its own, each minute in which something was
  * added and at the end of a job.
  *
+ * The range of each sound is what the watch said of it. Without one only what was received is summed.
+ *
  * Only impulses that the watch called ours are summed, only on calibrated channels, of the reference channel
  * of each stream (rule/blows.h); another project's never are. What channels beside it measure says how sound
  * falls with range: once a fit stands (rule/tally_fit.h), it moves levels to 750 m and to the distances of
@@ -27,7 +29,8 @@ struct tally_setup {
     const struct criteria *criteria; /* those to be judged, all of them; borrowed */
     enum criterion_sound sound;      /* what the job makes: set, never guessed */
     uint32_t n_streams;
-    double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown */
+    double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown. For
+                                                           * sound of whose range the watch said nothing */
     enum channel_role role[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS];
     struct source_shape shape;
     double loss_n_db, loss_n_spread_db;  /* N lg r; how unsure N is, one standard deviation */

@@ -3,14 +3,18 @@
 #include "base/student.h"
 #include "base/units.h"
 #include "rule/tally_fit.h"
+#include "rule/tally_place.h"
 #include <math.h>
 #include <stdio.h>
-#include <stdlib.h>
 #include <string.h>
 
 void tally_channel_begin_job(struct tally_channel *channel)
 {
+    double last_range_m = channel->last_range_m;
+    enum range_from last_from = channel->last_from;
     memset(channel, 0, sizeof *channel);
+    channel->last_range_m = last_range_m;
+    channel->last_from = last_from;
 }
 
 bool tally_channel_counts(struct tally_channel *channel, const struct impulse *impulse)
@@ -31,10 +35,11 @@ void tally_channel_add_energy(const struct impulse *impulse, double energy[LEVEL
             energy[b] += units_power_ratio(impulse->band_sel_db[b]);
 }
 
-void tally_channel_push(struct tally_channel *channel, const struct impulse *impulse)
+void tally_channel_push(struct tally_channel *channel, const struct impulse *impulse, double range_m)
 {
     bool highest = channel->n_impulses == 0 || impulse->peak_db > channel->peak_db;
     channel->peak_db = highest ? impulse->peak_db : channel->peak_db;
+    channel->range_m[channel->n_impulses % TALLY_KEPT_IMPULSES] = (float)range_m;
     channel->sel_db[channel->n_impulses++ % TALLY_KEPT_IMPULSES] = (float)impulse->sel_db;
     tally_channel_add_energy(impulse, channel->energy);
 }
@@ -42,23 +47,6 @@ void tally_channel_push(struct tally_channel *channel, const struct impulse *imp
 bool tally_channel_band(const struct tally_channel *channel, double *out_low_hz, double *out_high_hz)
 {
     return tally_fit_band(channel->energy, 0.1, 0.9, out_low_hz, out_high_hz);
-}
-
-static int by_level(const void *a, const void *b)
-{
-    float x = *(const float *)a, y = *(const float *)b;
-    return (x > y) - (x < y);
-}
-
-static double median_sel_db(const struct tally_channel *channel)
-{
-    float sorted[TALLY_KEPT_IMPULSES];
-    uint32_t n = channel->n_impulses < TALLY_KEPT_IMPULSES ? channel->n_impulses : TALLY_KEPT_IMPULSES;
-    if (n == 0)
-        return NAN;
-    memcpy(sorted, channel->sel_db, n * sizeof sorted[0]);
-    qsort(sorted, n, sizeof sorted[0], by_level);
-    return n % 2 ? sorted[n / 2] : 0.5 * ((double)sorted[n / 2 - 1] + sorted[n / 2]);
 }
 
 static void fill_law(const struct source_law *law, const struct source_numbers *numbers,
@@ -84,8 +72,9 @@ void tally_channel_fill(const struct tally_channel *channel, const struct source
     struct source_numbers numbers;
     out->n_impulses = channel->n_impulses;
     tally_counts_fill(&channel->counts, out);
-    out->range_m = measured->range_m;
-    out->sel_db = measurement.level_db = median_sel_db(channel);
+    out->sel_db = measurement.level_db = tally_median_db(channel);
+    uint32_t n_placed = tally_placed_median(channel, &law->loss, &measurement);
+    out->range_m = measurement.range_m;
     out->peak_db = channel->n_impulses > 0 && isfinite(channel->peak_db) ? channel->peak_db : NAN;
     out->at_750_m_db = out->at_750_m_low_db = out->at_750_m_high_db = NAN;
     out->back_db = out->back_low_db = out->back_high_db = NAN;
@@ -106,5 +95,6 @@ void tally_channel_fill(const struct tally_channel *channel, const struct source
     }
     const char *reason = numbers.at_750_m.known ? numbers.back_calculated.reason : numbers.at_750_m.reason;
     snprintf(out->reason, sizeof out->reason, "%s", reason);
+    tally_say_range(channel, n_placed, out->reason);
     fill_law(law, &numbers, out);
 }

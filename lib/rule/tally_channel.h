@@ -15,9 +15,12 @@
 /* Plain data; all 0 is a channel that heard nothing. */
 struct tally_channel {
     uint32_t n_impulses;
-    float sel_db[TALLY_KEPT_IMPULSES]; /* a ring */
-    double peak_db;                    /* the highest */
-    double energy[LEVEL_MAX_BANDS];    /* uPa2 s, of all */
+    float sel_db[TALLY_KEPT_IMPULSES];  /* a ring */
+    float range_m[TALLY_KEPT_IMPULSES]; /* of each of them; NAN where unknown */
+    double last_range_m;                /* of the last sound */
+    enum range_from last_from;
+    double peak_db;                 /* the highest */
+    double energy[LEVEL_MAX_BANDS]; /* uPa2 s, of all */
     struct tally_counts counts;
     bool changed; /* since it was last said */
 };
@@ -25,8 +28,8 @@ struct tally_channel {
 void tally_channel_begin_job(struct tally_channel *channel);
 /* Whether an impulse belongs into the sums; counts those that do not. Of ours that is said, too. */
 bool tally_channel_counts(struct tally_channel *channel, const struct impulse *impulse);
-/* Takes one that does. */
-void tally_channel_push(struct tally_channel *channel, const struct impulse *impulse);
+/* Takes one that does, heard at a range (NAN: unknown). */
+void tally_channel_push(struct tally_channel *channel, const struct impulse *impulse, double range_m);
 /* Whether there is anything to say of it. */
 bool tally_channel_heard(const struct tally_channel *channel);
 /* Adds an impulse's decidecades, uPa2 s. */
@@ -35,7 +38,7 @@ void tally_channel_add_energy(const struct impulse *impulse, double energy[LEVEL
  * decidecades. */
 bool tally_channel_band(const struct tally_channel *channel, double *out_low_hz, double *out_high_hz);
 /* The members of *out from n_impulses to range_high_m. The law must cover the channel's band; `measured`
- * holds what is known beside the levels: range, spread. */
+ * holds what is known beside the levels and ranges: spread, band. */
 void tally_channel_fill(const struct tally_channel *channel, const struct source_measurement *measured,
                         const struct source_shape *shape, const struct source_law *law,
                         struct source_outcome *out);

@@ -68,7 +68,11 @@ struct tally {
     int64_t said_minute;
 };
 
-/* From the source to the channel; NAN where unknown. */
+/* How far away the source was when a channel heard a sound, NAN where unknown: what the watch said of it, the
+ * setup's where it said nothing (RANGE_UNSET). Kept as the channel's last, and returned. */
+double tally_set_range(struct tally *tally, uint32_t stream, uint32_t channel, double said_m,
+                       enum range_from said_from);
+/* The same of the last sound that it heard. */
 double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channel);
 /* Counts an impulse in the sums, if it belongs there; whether it does. */
 bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impulse, double range_m,

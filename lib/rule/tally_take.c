@@ -4,9 +4,20 @@
 #include <stdio.h>
 #include <string.h>
 
+double tally_set_range(struct tally *tally, uint32_t stream, uint32_t channel, double said_m,
+                       enum range_from said_from)
+{
+    struct tally_channel *heard = &tally->sums[stream - 1].channels[channel - 1];
+    heard->last_from = said_from;
+    heard->last_range_m = said_from != RANGE_UNSET ? said_m : tally->setup.range_m[stream - 1][channel - 1];
+    return heard->last_range_m;
+}
+
 double tally_range_m(const struct tally *tally, uint32_t stream, uint32_t channel)
 {
-    return tally->setup.range_m[stream - 1][channel - 1];
+    const struct tally_channel *heard = &tally->sums[stream - 1].channels[channel - 1];
+    return heard->last_from != RANGE_UNSET ? heard->last_range_m
+                                           : tally->setup.range_m[stream - 1][channel - 1];
 }
 
 bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impulse, double range_m,
@@ -17,7 +28,7 @@ bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impul
     struct tally_channel *channel = &sums->channels[impulse->channel - 1];
     bool counts = tally_channel_counts(channel, impulse);
     if (counts && impulse->beside)
-        tally_channel_push(channel, impulse);
+        tally_channel_push(channel, impulse, range_m);
     if (impulse->whose != IMPULSE_OURS || impulse->beside)
         return counts; /* of a blow that counts the reference channel has the level */
     sums->changed = true;
@@ -29,7 +40,7 @@ bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impul
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)
         return counts;
     sums->channel = impulse->channel;
-    tally_channel_push(channel, impulse);
+    tally_channel_push(channel, impulse, range_m);
     const struct tally_move move = {.role = tally->setup.role[stream - 1][impulse->channel - 1],
                                     .range_m = range_m,
                                     .law = tally_law_of_impulse(tally, impulse),
@@ -50,7 +61,8 @@ void tally_take_level(struct tally *tally, uint32_t stream, const struct level *
     if (tally->setup.sound != SOUND_CONTINUOUS || level->relative ||
         (sums->channel && sums->channel != level->channel))
         return;
-    exposure_of_level(level, tally_range_m(tally, stream, level->channel), &sound);
+    exposure_of_level(
+        level, tally_set_range(tally, stream, level->channel, level->range_m, level->range_from), &sound);
     /* By its own time: seconds that come in again from a ledger come a minute late. */
     sound.before_job = level->start_ns < tally->job_ns;
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)

@@ -1,5 +1,6 @@
 /* The watch: events in, time, outcomes out. */
 #include "rule/watch.h"
+#include "base/round.h"
 #include "rule/watch_inner.h"
 #include <math.h>
 #include <stdlib.h>
@@ -32,6 +33,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
     source_reset(&watch->source);
+    ranges_reset(&watch->ranges, &setup->ranges);
     *out = watch;
     return STATUS_OK;
 }
@@ -103,8 +105,22 @@ static void set_recent(struct watch *watch, const struct event *event)
     why_add_cause(&watch->recent, id);
 }
 
+void watch_set_range(const struct watch *watch, struct event *event)
+{
+    struct impulse *impulse = &event->as.impulse;
+    struct level *level = &event->as.level;
+    if (event->kind == EVENT_IMPULSE && impulse->range_from == RANGE_UNSET)
+        impulse->range_m = round_decimals(ranges_get(&watch->ranges, event->stream, impulse->channel,
+                                                     event->known_ns, &impulse->range_from),
+                                          ROUND_DECIMALS_M);
+    if (event->kind == EVENT_LEVEL && level->range_from == RANGE_UNSET)
+        level->range_m =
+            ranges_get(&watch->ranges, event->stream, level->channel, event->known_ns, &level->range_from);
+}
+
 static void complete(struct watch *watch, struct event *event)
 {
+    watch_set_range(watch, event);
     if (event->kind == EVENT_IMPULSE)
         source_mark_impulse(watch, event);
     if (event->kind == EVENT_NOTE) {
@@ -129,6 +145,9 @@ static void take(struct watch *watch, const struct event *event)
     case EVENT_NOTE:
         note_take(watch, &event->as.note);
         break;
+    case EVENT_POSITION:
+        ranges_take(&watch->ranges, &event->as.position);
+        break;
     case EVENT_RUN:
     case EVENT_LEVEL:
         break;
@@ -137,11 +156,13 @@ static void take(struct watch *watch, const struct event *event)
 
 enum status watch_push(struct watch *watch, const struct event *event, const struct outcome_sink *sink)
 {
-    if (event->known_ns < watch->now_ns || (unsigned)event->kind > EVENT_NOTE)
+    if (event->known_ns < watch->now_ns || (unsigned)event->kind > EVENT_POSITION)
         return STATUS_BAD_ARGUMENT;
     if (event->kind == EVENT_CALL && (unsigned)event->as.call.group >= GROUP_COUNT)
         return STATUS_BAD_ARGUMENT;
     if (event->kind == EVENT_NOTE && (unsigned)event->as.note.group >= GROUP_COUNT)
+        return STATUS_BAD_ARGUMENT;
+    if (event->kind == EVENT_POSITION && position_check(&event->as.position) != STATUS_OK)
         return STATUS_BAD_ARGUMENT;
     watch->sink = sink;
     if (event->kind == EVENT_RUN)
@@ -157,6 +178,11 @@ enum status watch_push(struct watch *watch, const struct event *event, const str
         settle(watch);
     watch->sink = NULL;
     return STATUS_OK;
+}
+
+bool watch_wants_position(const struct watch *watch, const struct position *position)
+{
+    return ranges_wants(&watch->ranges, position);
 }
 
 enum status watch_advance(struct watch *watch, int64_t watch_ns, const struct outcome_sink *sink)

@@ -8,6 +8,7 @@
 
 #include "base/status.h"
 #include "flow.h"
+#include "place/ranges.h"
 #include "rule/permit.h"
 #include <stdbool.h>
 #include <stdint.h>
@@ -35,6 +36,9 @@ struct watch_setup {
      */
     double range_m[WATCH_MAX_STREAMS][FLOW_MAX_CHANNELS];
     double sound_speed_m_s;
+    /* Where source and channels are, and what moves; all zeros: the watch says nothing of ranges, and those
+     * above hold. */
+    struct ranges_setup ranges;
 };
 
 struct watch;
@@ -48,6 +52,13 @@ void watch_destroy(struct watch *watch);
  * that makes no sense now (a verdict on an unknown contact, a release with nothing to release) is recorded
  * all the same, and answered by a finding or ignored with a reason: never an error. */
 enum status watch_push(struct watch *watch, const struct event *event, const struct outcome_sink *sink);
+
+/* Whether a position should be pushed, or is too like the last one: what is not pushed is not recorded. */
+bool watch_wants_position(const struct watch *watch, const struct position *position);
+
+/* Says of an impulse or a level how far away the source is now, unless that was said before: an impulse from
+ * a ledger has its range, and settings that changed since rewrite nothing. watch_push does it by itself. */
+void watch_set_range(const struct watch *watch, struct event *event);
 
 /* Lets time pass: timers that are due run in order, each at its own due time. */
 enum status watch_advance(struct watch *watch, int64_t watch_ns, const struct outcome_sink *sink);

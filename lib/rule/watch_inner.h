@@ -133,6 +133,7 @@ struct watch {
     struct why let_go; /* why the last contact no longer holds anything back */
     int64_t let_go_ns; /* and since when */
 
+    struct ranges ranges;
     struct effort effort;
     struct source source;
     struct heard *heard; /* [WATCH_MAX_HEARD], a ring, owned */

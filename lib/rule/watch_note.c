@@ -1,5 +1,6 @@
 /* What people enter, and what comes of it. */
 #include "rule/watch_inner.h"
+#include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
 #include <string.h>
@@ -36,6 +37,20 @@ static void take_release(struct watch *watch, const struct note *note)
         snprintf(watch->released_by, sizeof watch->released_by, "%s", note->person);
         snprintf(watch->release_id, sizeof watch->release_id, "%s", watch->recent.causes[0]);
     }
+}
+
+static void take_position(struct watch *watch, const struct note *note)
+{
+    const struct position position = {.of = POSITION_OF_SOURCE,
+                                      .from = POSITION_FROM_NOTE,
+                                      .latitude_deg = note->latitude_deg,
+                                      .longitude_deg = note->longitude_deg,
+                                      .heading_deg = NAN,
+                                      .course_deg = NAN,
+                                      .speed_m_s = NAN,
+                                      .accuracy_m = NAN,
+                                      .occurred_ns = note->occurred_ns};
+    ranges_take(&watch->ranges, &position);
 }
 
 /* The note as a reason for what follows from it. */
@@ -99,6 +114,9 @@ void note_take(struct watch *watch, const struct note *note)
         break;
     case NOTE_WHOSE:
         whose_note(watch, note);
+        break;
+    case NOTE_POSITION:
+        take_position(watch, note);
         break;
     case NOTE_WEATHER:
     case NOTE_QUIETING: /* the tally's */

@@ -80,9 +80,10 @@ void source_job(struct watch *watch, const struct note *note)
         snprintf(source->job, sizeof source->job, "%.31s", note->job);
         source->n_impulses = 0;
         watch->job_heard = watch->n_heard;
-    } else if (strcmp(source->job, note->job) == 0)
+    } else if (strcmp(source->job, note->job) == 0) {
         source->job[0] = '\0';
-    else
+        ranges_end_job(&watch->ranges);
+    } else
         note_without_effect(watch, "job %.31s is not open", note->job);
 }
 
@@ -100,6 +101,8 @@ static bool is_placed(uint32_t stream, const struct impulse *impulse)
 
 static double range_of(const struct watch *watch, uint32_t stream, const struct impulse *impulse)
 {
+    if (impulse->range_from != RANGE_UNSET)
+        return impulse->range_m;
     return is_placed(stream, impulse) ? watch->setup.range_m[stream - 1][impulse->channel - 1] : NAN;
 }
 

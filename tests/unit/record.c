@@ -87,7 +87,9 @@ static void random_impulse(struct random *random, struct impulse *impulse)
                                 .clipped = random_bits(random) % 2,
                                 .overlapped = random_bits(random) % 2,
                                 .weak = random_bits(random) % 2,
-                                .whose = (enum impulse_whose)(random_bits(random) % 3)};
+                                .whose = (enum impulse_whose)(random_bits(random) % 3),
+                                .range_m = maybe(random, 1, 20000),
+                                .range_from = (enum range_from)(random_bits(random) % RANGE_FROM_COUNT)};
     for (uint32_t b = 0; b < impulse->n_bands; b++)
         impulse->band_sel_db[b] = maybe(random, -20, 220);
     random_text(random, impulse->job, sizeof impulse->job);
@@ -110,8 +112,23 @@ static void random_note(struct random *random, struct note *note)
     note->bearing_deg = maybe(random, 0, 360);
     note->sea_state = maybe(random, 0, 9);
     note->visibility_m = maybe(random, 0, 40000);
+    note->latitude_deg = maybe(random, -90, 90);
+    note->longitude_deg = maybe(random, -180, 180);
     note->calf = random_bits(random) % 2;
     note->leaving = random_bits(random) % 2;
+}
+
+static void random_position(struct random *random, struct position *position)
+{
+    *position = (struct position){.of = (enum position_of)(random_bits(random) % POSITION_OF_COUNT),
+                                  .from = (enum position_from)(random_bits(random) % POSITION_FROM_COUNT),
+                                  .latitude_deg = random_between(random, -90, 90),
+                                  .longitude_deg = random_between(random, -180, 180),
+                                  .heading_deg = maybe(random, 0, 360),
+                                  .course_deg = maybe(random, 0, 360),
+                                  .speed_m_s = maybe(random, 0, 15),
+                                  .accuracy_m = maybe(random, 0, 50),
+                                  .occurred_ns = random_time(random)};
 }
 
 static void random_event(struct random *random, enum event_kind kind, struct event *event)
@@ -136,6 +153,8 @@ static void random_event(struct random *random, enum event_kind kind, struct eve
         random_impulse(random, &event->as.impulse);
     else if (kind == EVENT_CALL)
         random_call(random, &event->as.call);
+    else if (kind == EVENT_POSITION)
+        random_position(random, &event->as.position);
     else
         random_note(random, &event->as.note);
 }
@@ -192,6 +211,8 @@ static void assert_same_impulse(const struct impulse *a, const struct impulse *b
     SAME(weak);
     SAME(whose);
     SAME_TEXT(job);
+    SAME_NUMBER(range_m);
+    SAME(range_from);
 }
 
 static void assert_same_note(const struct note *a, const struct note *b)
@@ -217,7 +238,22 @@ static void assert_same_note(const struct note *a, const struct note *b)
     SAME_NUMBER(sea_state);
     SAME_NUMBER(visibility_m);
     SAME(calf);
+    SAME_NUMBER(latitude_deg);
+    SAME_NUMBER(longitude_deg);
     SAME(leaving);
+}
+
+static void assert_same_position(const struct position *a, const struct position *b)
+{
+    SAME(of);
+    SAME(from);
+    SAME(latitude_deg);
+    SAME(longitude_deg);
+    SAME_NUMBER(heading_deg);
+    SAME_NUMBER(course_deg);
+    SAME_NUMBER(speed_m_s);
+    SAME_NUMBER(accuracy_m);
+    SAME(occurred_ns);
 }
 
 static void assert_same_event(const struct event *a, const struct event *b)
@@ -233,6 +269,8 @@ static void assert_same_event(const struct event *a, const struct event *b)
         assert_same_impulse(&a->as.impulse, &b->as.impulse);
     else if (a->kind == EVENT_NOTE)
         assert_same_note(&a->as.note, &b->as.note);
+    else if (a->kind == EVENT_POSITION)
+        assert_same_position(&a->as.position, &b->as.position);
     else if (a->kind == EVENT_RUN) {
         SAME(as.run_mark.outage_start_ns);
         SAME(as.run_mark.outage_end_ns);
@@ -282,14 +320,15 @@ static void outcome_of(const struct event *event, struct outcome *outcome)
 static void events_come_back_from_their_bodies(void **state)
 {
     (void)state;
-    static const enum event_kind kinds[] = {EVENT_RUN, EVENT_UNHEARD, EVENT_IMPULSE, EVENT_CALL, EVENT_NOTE};
+    static const enum event_kind kinds[] = {EVENT_RUN,  EVENT_UNHEARD, EVENT_IMPULSE,
+                                            EVENT_CALL, EVENT_NOTE,    EVENT_POSITION};
     struct random random;
     random_reset(&random, 20260301);
     struct text body = {0}, again = {0};
     int n = test_length() == TEST_SHORT ? 2000 : test_length() == TEST_CHECK ? 20000 : 200000;
     for (int i = 0; i < n; i++) {
         struct event event, back = {0};
-        random_event(&random, kinds[i % 5], &event);
+        random_event(&random, kinds[i % 6], &event);
         entry_round(&event);
         struct outcome outcome;
         outcome_of(&event, &outcome);
