@@ -52,7 +52,8 @@ static void fill_ranges(const struct site *site, struct ranges_setup *out)
                                  .source_offset_m = {site->position.offset_m[0], site->position.offset_m[1]},
                                  .has_source = site->source.place.known,
                                  .latitude_deg = site->source.place.latitude_deg,
-                                 .longitude_deg = site->source.place.longitude_deg};
+                                 .longitude_deg = site->source.place.longitude_deg,
+                                 .n_streams = site->n_streams};
     for (uint32_t i = 0; i < site->n_streams; i++) {
         const struct place_settings *place = &site->streams[i].place;
         struct ranges_stream *stream = &out->streams[i];

@@ -109,7 +109,7 @@ double ranges_get(const struct ranges *ranges, uint32_t stream, uint32_t channel
 {
     enum range_from from = RANGE_NO_PLACE;
     double range_m = NAN;
-    if (stream >= 1 && stream <= RANGES_MAX_STREAMS && channel >= 1 && channel <= RANGES_MAX_CHANNELS) {
+    if (stream >= 1 && stream <= ranges->setup.n_streams && channel >= 1 && channel <= RANGES_MAX_CHANNELS) {
         const struct ranges_stream *of = &ranges->setup.streams[stream - 1];
         const double *place_m = of->place_m[channel - 1];
         double length_m = sqrt(place_m[0] * place_m[0] + place_m[1] * place_m[1] + place_m[2] * place_m[2]);
@@ -138,7 +138,7 @@ bool ranges_wants(const struct ranges *ranges, const struct position *position)
         return true;
     struct ranges moved = *ranges;
     ranges_take(&moved, position);
-    for (uint32_t s = 1; s <= RANGES_MAX_STREAMS; s++)
+    for (uint32_t s = 1; s <= ranges->setup.n_streams; s++)
         for (uint32_t c = 1; c <= RANGES_MAX_CHANNELS; c++) {
             double before_m = ranges_get(ranges, s, c, now_ns, NULL);
             double after_m = ranges_get(&moved, s, c, now_ns, NULL);

@@ -30,13 +30,14 @@ struct ranges_stream {
     double place_m[RANGES_MAX_CHANNELS][3]; /* NAN: unknown */
 };
 
-/* All zeros: nothing moves and no range is known. */
+/* All zeros: no stream, and nothing is said of ranges. */
 struct ranges_setup {
     enum ranges_moves moves;
     double oldest_s;
     double source_offset_m[2]; /* where it moves: from the antenna, ahead and to starboard */
     bool has_source;           /* where it stays: the settings' position of it */
     double latitude_deg, longitude_deg;
+    uint32_t n_streams; /* of them are there */
     struct ranges_stream streams[RANGES_MAX_STREAMS];
 };
 

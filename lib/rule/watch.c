@@ -109,6 +109,8 @@ void watch_set_range(const struct watch *watch, struct event *event)
 {
     struct impulse *impulse = &event->as.impulse;
     struct level *level = &event->as.level;
+    if (watch->setup.ranges.n_streams == 0)
+        return;
     if (event->kind == EVENT_IMPULSE && impulse->range_from == RANGE_UNSET)
         impulse->range_m = round_decimals(ranges_get(&watch->ranges, event->stream, impulse->channel,
                                                      event->known_ns, &impulse->range_from),

@@ -43,11 +43,18 @@ static void make_note(const uint8_t *b, struct note *note)
 
 static void make_event(const uint8_t *b, int64_t now_ns, uint64_t counter, struct event *event)
 {
-    static const enum event_kind kinds[] = {EVENT_UNHEARD, EVENT_LEVEL, EVENT_IMPULSE,
-                                            EVENT_CALL,    EVENT_NOTE,  EVENT_RUN};
+    static const enum event_kind kinds[] = {EVENT_UNHEARD, EVENT_LEVEL, EVENT_IMPULSE, EVENT_CALL,
+                                            EVENT_NOTE,    EVENT_RUN,   EVENT_POSITION};
     memset(event, 0, sizeof *event);
-    *event = (struct event){.kind = kinds[b[0] % 6], .run = 1, .counter = counter, .known_ns = now_ns};
-    event->stream = event->kind == EVENT_NOTE || event->kind == EVENT_RUN ? 0 : 1;
+    *event = (struct event){.kind = kinds[b[0] % 7], .run = 1, .counter = counter, .known_ns = now_ns};
+    event->stream =
+        event->kind == EVENT_NOTE || event->kind == EVENT_RUN || event->kind == EVENT_POSITION ? 0 : 1;
+    if (event->kind == EVENT_POSITION)
+        event->as.position = (struct position){.of = (enum position_of)(b[1] % POSITION_OF_COUNT),
+                                               .latitude_deg = b[2] * 0.7 - 90,
+                                               .longitude_deg = b[3] * 1.4 - 180,
+                                               .heading_deg = b[4],
+                                               .occurred_ns = now_ns};
     if (event->kind == EVENT_NOTE)
         make_note(b + 1, &event->as.note);
     if (event->kind == EVENT_RUN)
@@ -91,7 +98,9 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
                                 .act_evidence = 3,
                                 .evidence_decay_s = 60,
                                 .sighting_log_spread = 0.15,
-                                .silence_s = 20};
+                                .silence_s = 20,
+                                .ranges = {.moves = RANGES_ARRAY, .oldest_s = 60, .n_streams = 1}};
+    setup.ranges.streams[0].place_m[0][0] = -100;
     if (watch_create(&setup, &watch) != STATUS_OK)
         abort();
     struct taking taking = {0};

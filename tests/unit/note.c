@@ -77,6 +77,9 @@ static void bad_values_are_refused_and_change_nothing(void **state)
         {"person", "a\nb", STATUS_BAD_FORMAT},
         {"job", "0123456789012345678901234567890123", STATUS_OUT_OF_RANGE},
         {"person", "0123456789012345678901234567890123456789012345678901234567890123", STATUS_OUT_OF_RANGE},
+        {"latitude_deg", "90.1", STATUS_OUT_OF_RANGE},
+        {"longitude_deg", "-181", STATUS_OUT_OF_RANGE},
+        {"latitude_deg", "54 30", STATUS_BAD_FORMAT},
         {"occurred_ns", "-5", STATUS_BAD_FORMAT},
         {"known_ns", "5", STATUS_NOT_FOUND}, /* the watch stamps it, nobody else */
         {"kind", "release", STATUS_NOT_FOUND},

@@ -29,7 +29,7 @@ static struct position at(double east_m, double north_m, double t_s)
 
 static struct ranges_setup setup_of(enum ranges_moves moves, double x_m, double y_m, double z_m)
 {
-    struct ranges_setup setup = {.moves = moves, .oldest_s = 60};
+    struct ranges_setup setup = {.moves = moves, .oldest_s = 60, .n_streams = 1};
     setup.streams[0].place_m[0][0] = x_m;
     setup.streams[0].place_m[0][1] = y_m;
     setup.streams[0].place_m[0][2] = z_m;

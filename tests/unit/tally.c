@@ -295,6 +295,64 @@ static void a_quieting_measure_is_worth_what_it_takes_off(void **state)
     tally_destroy(tally);
 }
 
+/* A hydrophone that is towed from 200 m to 2 km past a pile of constant energy: received levels fall by 15 lg
+ * r, and every number at 750 m stays what it is (the closed form of the loss). Blows of unknown range count
+ * as received only, and that is said. */
+static void the_range_of_each_impulse_counts(void **state)
+{
+    (void)state;
+    struct said said = {0};
+    struct tally *tally = make_tally(NAN);
+    const double at_750_db = 160;
+    double received = 0;
+    open_job(tally, &said, TIME_NS_PER_S);
+    for (int i = 0; i < 120; i++) {
+        struct event event = {.kind = EVENT_IMPULSE, .stream = 1};
+        double range_m = 200 + 15 * i, sel_db = at_750_db - 15 * log10(range_m / 750);
+        bool known = i < 100;
+        event.as.impulse = (struct impulse){.channel = 1,
+                                            .time_ns = (10 + i) * TIME_NS_PER_S,
+                                            .sel_db = sel_db,
+                                            .peak_db = sel_db + 20,
+                                            .peak_to_peak_db = sel_db + 25,
+                                            .rms90_db = sel_db + 10,
+                                            .t90_s = 0.1,
+                                            .positive_impulse_pa_s = NAN,
+                                            .n_bands = 34,
+                                            .whose = IMPULSE_OURS,
+                                            .range_m = known ? range_m : NAN,
+                                            .range_from = known ? RANGE_POSITIONS : RANGE_TOO_OLD};
+        for (uint32_t b = 0; b < 34; b++)
+            event.as.impulse.band_sel_db[b] = b == 10 ? sel_db : NAN;
+        received += pow(10, sel_db / 10);
+        give(tally, &said, event, (10 + i) * TIME_NS_PER_S);
+        if (i == 99) {
+            const struct outcome_sink sink = {take, &said};
+            tally_finish(tally, 115 * TIME_NS_PER_S, &sink);
+            assert_near(said.source.at_750_m_db, at_750_db, 0.001);
+            assert_near(said.source.range_m, 200 + 15 * 49.5, 0.01);
+            assert_near(said.source.n_db, 15, 1e-9);
+            /* The median as received is that at the median range. */
+            assert_near(said.source.sel_db, at_750_db - 15 * log10((200 + 15 * 49.5) / 750), 0.01);
+            /* 100 equal blows at 750 m: 20 dB; weighted as above. Absorption at 100 Hz over 2 km: 0.002 dB.
+             */
+            assert_near(find(&said, "LF injury, impulsive, SEL")->at_750_m_db, at_750_db + 20 - 5.6454,
+                        0.005);
+            assert_null(strstr(said.source.reason, "unknown"));
+        }
+    }
+    memset(said.exposures, 0, sizeof said.exposures);
+    const struct outcome_sink sink = {take, &said};
+    tally_finish(tally, 200 * TIME_NS_PER_S, &sink);
+    assert_near(find(&said, "LF injury, impulsive, SEL")->level_db, 10 * log10(received) - 5.6454, 0.001);
+    assert_near(find(&said, "LF injury, impulsive, SEL")->at_750_m_db, at_750_db + 20 - 5.6454, 0.005);
+    assert_int_equal(find(&said, "LF injury, impulsive, SEL")->n_without_range, 20);
+    assert_near(said.source.at_750_m_db, at_750_db, 0.001);
+    assert_non_null(strstr(said.source.reason, "position too old"));
+    assert_non_null(strstr(said.source.reason, "the range of 20 of 120 impulses is unknown"));
+    tally_destroy(tally);
+}
+
 /* What is relative is compared with no criterion. */
 static void relative_levels_count_for_nothing(void **state)
 {
@@ -578,6 +636,7 @@ int main(void)
         cmocka_unit_test(a_limit_is_a_finding_once),
         cmocka_unit_test(a_quieting_measure_is_worth_what_it_takes_off),
         cmocka_unit_test(the_others_count_with_ours),
+        cmocka_unit_test(the_range_of_each_impulse_counts),
         cmocka_unit_test(relative_levels_count_for_nothing),
         cmocka_unit_test(what_was_left_out_is_counted),
         cmocka_unit_test(a_distance_has_words),

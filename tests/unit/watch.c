@@ -399,6 +399,57 @@ static void no_room_for_another_person_is_said(void **state)
     assert_int_equal(view.phase, PHASE_OFF);
 }
 
+/* ---- positions */
+
+/* A vessel steams north from a pile with a hydrophone 40 m down under its antenna: each impulse carries its
+ * range. One degree of latitude is 111.13 km at 45 degrees (111132.9 m: any table of the ellipsoid). */
+static void impulses_carry_their_range(void **state)
+{
+    (void)state;
+    struct watch_setup setup = good_setup();
+    setup.ranges = (struct ranges_setup){.moves = RANGES_ARRAY, .oldest_s = 60, .n_streams = 1};
+    setup.ranges.streams[0].place_m[0][2] = 40;
+    watch_destroy(watch);
+    assert_int_equal(watch_create(&setup, &watch), STATUS_OK);
+    struct event blow = {.kind = EVENT_IMPULSE, .stream = 1};
+    blow.as.impulse = (struct impulse){.channel = 1, .time_ns = SECOND, .sel_db = 160, .peak_db = 180};
+    push(blow, SECOND);
+    assert_true(isnan(kept.all[kept.n - 1].as.event.as.impulse.range_m));
+    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_NO_SOURCE);
+    NOTE(2 * SECOND, NOTE_POSITION, {"latitude_deg", "44.995"}, {"longitude_deg", "-3.5"});
+    struct event here = {.kind = EVENT_POSITION};
+    here.as.position = (struct position){.of = POSITION_OF_VESSEL,
+                                         .latitude_deg = 45.005,
+                                         .longitude_deg = -3.5,
+                                         .heading_deg = NAN,
+                                         .course_deg = NAN,
+                                         .speed_m_s = NAN,
+                                         .accuracy_m = NAN,
+                                         .occurred_ns = 3 * SECOND};
+    assert_true(watch_wants_position(watch, &here.as.position));
+    push(here, 3 * SECOND);
+    here.as.position.occurred_ns = 4 * SECOND;
+    assert_false(watch_wants_position(watch, &here.as.position));
+    push(blow, 5 * SECOND);
+    assert_near(kept.all[kept.n - 1].as.event.as.impulse.range_m, sqrt(1111.329 * 1111.329 + 1600), 0.06);
+    blow.as.impulse.range_m = 333; /* as from a ledger: it stays what it was */
+    blow.as.impulse.range_from = RANGE_POSITIONS;
+    push(blow, 6 * SECOND);
+    assert_true(kept.all[kept.n - 1].as.event.as.impulse.range_m == 333);
+    blow.as.impulse.range_from = RANGE_UNSET;
+    push(blow, 64 * SECOND);
+    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_TOO_OLD);
+    NOTE(65 * SECOND, NOTE_JOB, {"job", "pile 1"}, {"answer", "open"});
+    NOTE(66 * SECOND, NOTE_JOB, {"job", "pile 1"}, {"answer", "close"});
+    here.as.position.occurred_ns = 66 * SECOND;
+    push(here, 66 * SECOND);
+    push(blow, 67 * SECOND); /* where the next pile is nobody has said */
+    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_NO_SOURCE);
+    here.as.position.latitude_deg = 91;
+    here.known_ns = 68 * SECOND;
+    assert_int_equal(watch_push(watch, &here, &sink), STATUS_BAD_ARGUMENT);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -414,6 +465,7 @@ int main(void)
         cmocka_unit_test_setup_teardown(counters_begin_anew_with_each_run, begin, end),
         cmocka_unit_test_setup_teardown(each_station_answers_for_itself, begin, end),
         cmocka_unit_test_setup_teardown(advice_in_force_is_never_forgotten, begin, end),
+        cmocka_unit_test_setup_teardown(impulses_carry_their_range, begin, end),
         cmocka_unit_test_setup_teardown(no_room_for_another_person_is_said, begin, end),
     };
     return cmocka_run_group_tests_name("watch", tests, NULL, NULL);
