@@ -401,6 +401,15 @@ static void no_room_for_another_person_is_said(void **state)
 
 /* ---- positions */
 
+static const struct impulse *last_impulse(void)
+{
+    for (unsigned i = kept.n; i > 0; i--)
+        if (kept.all[i - 1].kind == OUTCOME_EVENT && kept.all[i - 1].as.event.kind == EVENT_IMPULSE)
+            return &kept.all[i - 1].as.event.as.impulse;
+    fail_msg("no impulse came out");
+    return NULL;
+}
+
 /* A vessel steams north from a pile with a hydrophone 40 m down under its antenna: each impulse carries its
  * range. One degree of latitude is 111.13 km at 45 degrees (111132.9 m: any table of the ellipsoid). */
 static void impulses_carry_their_range(void **state)
@@ -414,8 +423,8 @@ static void impulses_carry_their_range(void **state)
     struct event blow = {.kind = EVENT_IMPULSE, .stream = 1};
     blow.as.impulse = (struct impulse){.channel = 1, .time_ns = SECOND, .sel_db = 160, .peak_db = 180};
     push(blow, SECOND);
-    assert_true(isnan(kept.all[kept.n - 1].as.event.as.impulse.range_m));
-    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_NO_SOURCE);
+    assert_true(isnan(last_impulse()->range_m));
+    assert_int_equal(last_impulse()->range_from, RANGE_NO_SOURCE);
     NOTE(2 * SECOND, NOTE_POSITION, {"latitude_deg", "44.995"}, {"longitude_deg", "-3.5"});
     struct event here = {.kind = EVENT_POSITION};
     here.as.position = (struct position){.of = POSITION_OF_VESSEL,
@@ -431,20 +440,20 @@ static void impulses_carry_their_range(void **state)
     here.as.position.occurred_ns = 4 * SECOND;
     assert_false(watch_wants_position(watch, &here.as.position));
     push(blow, 5 * SECOND);
-    assert_near(kept.all[kept.n - 1].as.event.as.impulse.range_m, sqrt(1111.329 * 1111.329 + 1600), 0.06);
+    assert_near(last_impulse()->range_m, sqrt(1111.329 * 1111.329 + 1600), 0.06);
     blow.as.impulse.range_m = 333; /* as from a ledger: it stays what it was */
     blow.as.impulse.range_from = RANGE_POSITIONS;
     push(blow, 6 * SECOND);
-    assert_true(kept.all[kept.n - 1].as.event.as.impulse.range_m == 333);
+    assert_true(last_impulse()->range_m == 333);
     blow.as.impulse.range_from = RANGE_UNSET;
     push(blow, 64 * SECOND);
-    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_TOO_OLD);
+    assert_int_equal(last_impulse()->range_from, RANGE_TOO_OLD);
     NOTE(65 * SECOND, NOTE_JOB, {"job", "pile 1"}, {"answer", "open"});
     NOTE(66 * SECOND, NOTE_JOB, {"job", "pile 1"}, {"answer", "close"});
     here.as.position.occurred_ns = 66 * SECOND;
     push(here, 66 * SECOND);
     push(blow, 67 * SECOND); /* where the next pile is nobody has said */
-    assert_int_equal(kept.all[kept.n - 1].as.event.as.impulse.range_from, RANGE_NO_SOURCE);
+    assert_int_equal(last_impulse()->range_from, RANGE_NO_SOURCE);
     here.as.position.latitude_deg = 91;
     here.known_ns = 68 * SECOND;
     assert_int_equal(watch_push(watch, &here, &sink), STATUS_BAD_ARGUMENT);
