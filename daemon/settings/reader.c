@@ -201,7 +201,7 @@ bool group_word(struct group_reader *group, const char *key, bool required, cons
             *value = i;
     }
     if (member && !good) {
-        char allowed[512] = "";
+        char allowed[2048] = "";
         for (unsigned i = 0; i < n; i++)
             if (words[i] && strlen(allowed) + strlen(words[i]) + 4 < sizeof allowed) {
                 strcat(allowed, *allowed ? ", " : "");

@@ -61,6 +61,8 @@ struct scene_kind {
     double (*spacing_s)(const struct kind_order *order, double length_s, struct random *random);
     /* Where settings change max_length_s; NULL: none do. */
     double (*length_s)(const struct scene_emitter *emitter);
+    /* What is impossible in its settings together at a sampling rate; NULL: nothing. May be NULL itself. */
+    const char *(*problem)(const struct scene_emitter *emitter, double rate_hz);
 };
 
 /* The n-th kind, NULL after the last; the one of that name, NULL where there is none. */

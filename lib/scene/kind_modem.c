@@ -47,6 +47,15 @@ static double spacing_s(const struct kind_order *order, double length_s, struct 
     return length_s + 2 + 6 * random_exponential(random);
 }
 
+static const char *problem(const struct scene_emitter *emitter, double rate_hz)
+{
+    const double *settings = emitter->settings;
+    if (settings[FREQUENCY] + settings[BAND] > 0.45 * rate_hz)
+        return "frequency_hz + band_hz; allowed: up to 0.45 of the sampling rate";
+    return settings[LENGTH] > SOUND_MAX_CHIPS * settings[CHIP] + 1e-9 ? "length_s; allowed: up to 256 chip_s"
+                                                                      : NULL;
+}
+
 const struct scene_kind kind_hopping_modem = {
     .name = "hopping modem",
     .class = "modem",
@@ -62,6 +71,7 @@ const struct scene_kind kind_hopping_modem = {
                  [LENGTH] = {"length_s", 0.05, 2.5, 1.2}},
     .make = make_hopping,
     .spacing_s = spacing_s,
+    .problem = problem,
 };
 
 const struct scene_kind kind_chirp_modem = {
@@ -79,6 +89,7 @@ const struct scene_kind kind_chirp_modem = {
                  [LENGTH] = {"length_s", 0.05, 2.5, 1.5}},
     .make = make_chirps,
     .spacing_s = spacing_s,
+    .problem = problem,
 };
 
 /* JANUS (STANAG 4748, open; from memory): 9440 to 13600 Hz in 26 slots of 160 Hz, each bit takes one of a

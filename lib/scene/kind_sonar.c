@@ -32,6 +32,14 @@ static double length_s(const struct scene_emitter *emitter)
     return 2.1 * emitter->settings[LENGTH] + 1.1 * emitter->settings[REVERBERATION];
 }
 
+static const char *problem(const struct scene_emitter *emitter, double rate_hz)
+{
+    double end_hz = emitter->settings[FREQUENCY] + emitter->settings[SWEEP];
+    return end_hz >= 100 && end_hz <= 0.45 * rate_hz
+               ? NULL
+               : "frequency_hz + sweep_hz; allowed: 100 Hz to 0.45 of the sampling rate";
+}
+
 const struct scene_kind kind_naval_sonar = {
     .name = "naval sonar",
     .class = "sonar ping",
@@ -48,4 +56,5 @@ const struct scene_kind kind_naval_sonar = {
                  [REVERBERATION] = {"reverberation_s", 0, 20, 4}},
     .make = make,
     .length_s = length_s,
+    .problem = problem,
 };

@@ -147,6 +147,12 @@ static void check_emitter(const struct scene *scene, const struct scene_emitter 
     problem(search, scene->rate_hz < kind->min_rate_hz, "%s %u: %s needs a sampling rate of at least %g Hz",
             list, i + 1, kind->name, kind->min_rate_hz);
     check_settings(scene, emitter, list, i, search);
+    const char *impossible = kind->problem ? kind->problem(emitter, scene->rate_hz) : NULL;
+    problem(search, impossible != NULL, "%s %u: %s", list, i + 1, impossible ? impossible : "");
+    problem(search,
+            kind->lasts &&
+                (isfinite(emitter->interval_s) || isfinite(emitter->pulse_interval_s) || emitter->pulses > 0),
+            "%s %u: %s lasts, and has no interval_s, pulses or pulse_interval_s", list, i + 1, kind->name);
     problem(search, emitter->pulses > SCENE_MAX_PULSES, "%s %u: pulses; allowed: up to %d", list, i + 1,
             SCENE_MAX_PULSES);
     problem(search, emitter->interval_s <= 0 || emitter->pulse_interval_s <= 0,

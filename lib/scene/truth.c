@@ -182,6 +182,11 @@ static void write_emission(struct writer *writer, const struct emission *emissio
         text_format(&writer->text, "\"%s\":\"%s\",\"group\":\"%s\",\"class\":\"%s\",",
                     emission->kind == EMISSION_CALL ? "voice" : "kind", kind->name, group_text(kind->group),
                     kind->class);
+    else
+        text_format(&writer->text, "\"class\":\"%s\",",
+                    emission->kind == EMISSION_BLOW   ? "hammer blow"
+                    : emission->kind == EMISSION_SHOT ? "airgun shot"
+                                                      : "echosounder ping");
     number(writer, "start_s", emission->start_s, 7);
     number(writer, "end_s", emission->start_s + emission_length_s(emission), 7);
     number(writer, "low_hz", low_hz, 1);

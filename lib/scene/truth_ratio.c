@@ -5,8 +5,9 @@
 #include <math.h>
 
 #define STEPS 128
-#define HANN_NOISE_BINS 1.5 /* equivalent noise bandwidth of a Hann window (Harris 1978, Proc. IEEE 66, 51)  \
-                             */
+#define HANN_NOISE_BINS                                                                                      \
+    1.5 /* equivalent noise bandwidth of a Hann window (Harris 1978, Proc. IEEE 66, 51)                      \
+         */
 #define LN_2 0.6931471805599453 /* median over mean of a cell's power in Gaussian noise */
 
 static double density_pa2(const struct scene *scene, double hz)

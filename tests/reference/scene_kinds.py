@@ -2,8 +2,10 @@
 """Every kind of sound of the simulator against published figures, measured with scipy on what `hushwatch render` writes: peak
 frequency, band, length, intervals. Bounds are the published range, or the published figure within what the recipe varies it
 by; where no source is named the figures are common practice, no source. Prints TAP and the speed of rendering."""
+import glob
 import json
 import os
+import re
 import subprocess
 import sys
 import tempfile
@@ -121,6 +123,9 @@ ANIMALS = [
     # Below 4 to 8 kHz, ringing for tens of ms, 4 to 8 s apart.
     ("sperm whale slow clicks", 24000, 300, 0.05, "", dict(peak=(1e3, 8e3), high=(1e3, 8e3), length=(0.004, 0.05),
                                                           interval=(3.9, 8.1))),
+    # Zimmer et al. 2005 (J. Acoust. Soc. Am. 117, 3919): 42 kHz, -10 dB band 22 kHz, some 200 us (both within 15 %); modal interval 0.40 to 0.43 s.
+    ("beaked whale clicks", 288000, 14, 6e-4, "pulses = 25;", dict(centroid=(41e3, 43e3), band=(18.7e3, 25.3e3), length=(170e-6, 230e-6),
+                                                                  interval=(0.35, 0.5))),
     # Johnson et al. 2006 (J. Exp. Biol. 209, 5038): -10 dB 26 to 51 kHz (25 kHz wide), 0.2 to 0.4 s; 270 us long.
     ("blainville clicks", 288000, 12, 6e-4, "pulses = 25;", dict(low=(25e3, 28e3), high=(48e3, 52e3), band=(22e3, 26e3), length=(180e-6, 270e-6),
                                                     interval=(0.199, 0.401))),
@@ -321,7 +326,18 @@ def ratios():
           "; ".join("%s: truth %.2f, measured %.2f dB" % row for row in rows))
 
 
-for test in (given, codas, lasting, shots, ratios):
+def listed():
+    """Every kind of the source stands in docs/scenes.md, and is measured here or (the first ten) in scene_calls.py."""
+    kinds = [name for path in glob.glob("lib/scene/kind_*.c") for name in re.findall(r'\.name = "([^"]+)"', open(path).read())]
+    with open("docs/scenes.md") as file:
+        docs = file.read()
+    tests = open("tests/reference/scene_kinds.py").read() + open("tests/reference/scene_calls.py").read()
+    missing = [k for k in kinds if "| `%s` |" % k not in docs or '"%s"' % k not in tests]
+    check("every kind is in the docs and measured", len(kinds) > 50 and not missing, "%d kinds; missing: %s" % (
+        len(kinds), ", ".join(missing) or "none"))
+
+
+for test in (listed, given, codas, lasting, shots, ratios):
     test()
 print("# figure rendering: %.1f million samples a second, mean over %d scenes of a source each (with the truth)" % (
     sum(s for s, _ in speeds) / sum(t for _, t in speeds) / 1e6, len(speeds)))

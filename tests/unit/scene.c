@@ -520,6 +520,26 @@ static void impossible_scenes_are_refused(void **state)
     assert_int_equal(render_create(&scene, &render), STATUS_BAD_ARGUMENT);
     assert_null(render);
     render_destroy(NULL);
+    fresh(NULL);
+    scene.n_emitters = 4;
+    scene.emitters[0] = scene_emitter_of("naval sonar");
+    assert_int_equal(scene_emitter_set(&scene.emitters[0], "length_s", 5), STATUS_OUT_OF_RANGE);
+    assert_int_equal(scene_emitter_set(&scene.emitters[0], "length_hz", 1), STATUS_NOT_FOUND);
+    assert_int_equal(scene_emitter_set(&scene.emitters[0], "frequency_hz", 2000), STATUS_OK);
+    assert_int_equal(scene_emitter_set(&scene.emitters[0], "sweep_hz", -1950), STATUS_OK);
+    scene.emitters[1] = scene_emitter_of("hopping modem");
+    assert_int_equal(scene_emitter_set(&scene.emitters[1], "chip_s", 0.002), STATUS_OK); /* 600 chips */
+    scene.emitters[2] = scene_emitter_of("rain");
+    scene.emitters[2].interval_s = 3;
+    scene.emitters[3] = scene_emitter_of("a kraken");
+    static const char *const more[] = {"frequency_hz + sweep_hz", "256 chip_s", "lasts", "of no kind"};
+    for (uint32_t i = 0; i < 4; i++) {
+        assert_int_equal(scene_check(&scene, i, problem), STATUS_OUT_OF_RANGE);
+        assert_non_null(strstr(problem, more[i]));
+    }
+    assert_int_equal(scene_check(&scene, 4, problem), STATUS_OK);
+    print_message("# figure a scene takes %zu bytes, an emission %zu\n", sizeof scene,
+                  sizeof(struct emission));
 }
 
 int main(void)
