@@ -53,6 +53,8 @@ struct pulses {
     float decimated[PIECE_FRAMES + 1];
     const struct found_sink *sink; /* of the push at hand */
     uint64_t known_frame;
+    const struct train *given; /* while the sink has it */
+    const struct trains *given_by;
 };
 
 static double highest_hz(const struct call_class *call_class)
@@ -242,7 +244,10 @@ static void take_train(void *context, const struct train *train)
         .mean_square_pa2 =
             (train->end_energy - train->start_energy) / fmax(1, train->end_frame - train->start_frame),
     };
+    hearing->pulses->given = train;
+    hearing->pulses->given_by = ear->trains;
     hearing->pulses->sink->take(hearing->pulses->sink->context, &found);
+    hearing->pulses->given = NULL;
 }
 
 static void take_pulse(void *context, const struct pulse *pulse)
@@ -348,6 +353,16 @@ void pulses_get_rejections(const struct pulses *pulses, uint64_t out[][REJECT_CO
     for (uint32_t e = 0; e < pulses->n_ears; e++)
         memcpy(out[pulses->ears[e].class_index], pulses->ears[e].rejections,
                sizeof pulses->ears[e].rejections);
+}
+
+bool pulses_get_arrivals(const struct pulses *pulses, double *out)
+{
+    if (!pulses->given)
+        return false;
+    for (uint32_t i = 0; i < pulses->given->n_pulses; i++)
+        out[i] =
+            (double)pulses->first_frame + trains_get_arrival(pulses->given_by, pulses->given->members[i]);
+    return true;
 }
 
 void pulses_destroy(struct pulses *pulses)

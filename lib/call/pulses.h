@@ -42,6 +42,10 @@ void pulses_hide(struct pulses *pulses, double start_frame, double end_frame, do
 bool pulses_is_hearable(const struct pulses *pulses, uint32_t class_index);
 /* Adds up since create, out[class_index][rejection]; rows of other classes are left alone. */
 void pulses_get_rejections(const struct pulses *pulses, uint64_t out[][REJECT_COUNT]);
+/* While the sink is being given a train: when each of its n_pulses arrived, in frames, for those who hold
+ * trains against a known truth; out[n_pulses], at most TRAINS_MAX_MEMBERS. False, and nothing written, at any
+ * other time. */
+bool pulses_get_arrivals(const struct pulses *pulses, double *out);
 void pulses_destroy(struct pulses *pulses);
 
 #endif

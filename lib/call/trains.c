@@ -298,6 +298,11 @@ void trains_hide(struct trains *trains, double start_frame, double end_frame, ui
     }
 }
 
+double trains_get_arrival(const struct trains *trains, uint64_t member)
+{
+    return trains_node(trains, member)->frame;
+}
+
 void trains_destroy(struct trains *trains)
 {
     if (!trains)

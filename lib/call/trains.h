@@ -70,6 +70,9 @@ void trains_finish(struct trains *trains, const struct train_sink *sink, uint64_
 /* The pulses that arrived in [start, end] are the own source's: they count for no train. Those that a train
  * has already been given for stay given. Adds to rejections[REJECT_OWN_SOURCE]. */
 void trains_hide(struct trains *trains, double start_frame, double end_frame, uint64_t *rejections);
+/* When the pulse of that number arrived, in frames; it must be a member of the train that the sink is being
+ * given. */
+double trains_get_arrival(const struct trains *trains, uint64_t member);
 void trains_destroy(struct trains *trains);
 
 #endif
