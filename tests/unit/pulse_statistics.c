@@ -10,6 +10,8 @@
 #include "call/trigger.h"
 #include "settings/catalogue.h"
 #include "support/clicks.h"
+#include "support/finder.h"
+#include "support/ideal.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -31,122 +33,20 @@ static double scaled(double short_run, double check_run, double long_run)
     return length == TEST_SHORT ? short_run : length == TEST_CHECK ? check_run : long_run;
 }
 
-/* ---- the ideal: chi-square with 2 TW degrees of freedom, noncentral by 2E/N0, for whole TW */
-
-/* Upper tail of chi-square with 2 k degrees of freedom: exp(-y) sum_{j<k} y^j / j!, y = x / 2. */
-static double chi_square_tail(uint32_t k, double x)
-{
-    double term = exp(-x / 2), sum = 0;
-    for (uint32_t j = 0; j < k; j++) {
-        sum += term;
-        term *= x / 2 / (j + 1);
-    }
-    return sum;
-}
-
-/* The noncentral tail: a Poisson mixture of central ones. */
-static double detection(uint32_t tw, double lambda, double threshold)
-{
-    double weight = exp(-lambda / 2), sum = 0;
-    for (uint32_t j = 0; j < 400; j++) {
-        sum += weight * chi_square_tail(tw + j, threshold);
-        weight *= lambda / 2 / (j + 1);
-    }
-    return sum;
-}
-
-static double threshold_for(uint32_t tw, double false_alarm)
-{
-    double low = 0, high = 1000;
-    for (int i = 0; i < 100; i++) {
-        double middle = (low + high) / 2;
-        *(chi_square_tail(tw, middle) > false_alarm ? &low : &high) = middle;
-    }
-    return low;
-}
-
-/* 2E/N0 that the ideal detector needs for Pd 0.9 at one false alarm an hour, W looks a second. */
-static double ideal_lambda(double w_hz, double t_s)
-{
-    uint32_t tw = (uint32_t)lround(w_hz * t_s);
-    double threshold = threshold_for(tw, 1 / (3600 * w_hz)), low = 0, high = 500;
-    for (int i = 0; i < 60; i++) {
-        double middle = (low + high) / 2;
-        *(detection(tw, middle, threshold) < 0.9 ? &low : &high) = middle;
-    }
-    return low;
-}
-
 /* Reference: scipy.stats chi2.isf and ncx2.sf, version 1.10, TW 5, Pfa 0.001, SNR 0 dB. */
 static void the_ideal_agrees_with_scipy(void **state)
 {
     (void)state;
-    assert_near(threshold_for(5, 1e-3), 29.5883, 1e-4);
-    assert_near(threshold_for(1, 1e-6), 27.6310, 1e-4);
-    assert_near(detection(5, 10, threshold_for(5, 1e-3)), 0.1142, 1e-4);
-    assert_near(detection(10, 20, threshold_for(10, 1e-6)), 0.0194, 1e-4);
-}
-
-/* ---- one class's pulse finder by itself */
-
-struct finder {
-    struct bands *bands;
-    struct trigger *trigger;
-    float *block;
-    uint32_t block_frames;
-    uint64_t n_frames;
-    struct random random;
-    uint64_t rejections[REJECT_COUNT];
-    struct pulse_sink sink;
-};
-
-static struct finder *finder_create(const struct call_class *call_class, double rate_hz, uint64_t seed,
-                                    struct pulse_sink sink)
-{
-    struct finder *finder = calloc(1, sizeof *finder);
-    assert_non_null(finder);
-    uint32_t slot = (uint32_t)fmax(1, round(call_class->train.pulse_s * rate_hz / 6));
-    struct band_edges edges[2] = {{call_class->low_hz, call_class->high_hz},
-                                  {call_class->train.guard_low_hz, call_class->train.guard_high_hz}};
-    assert_int_equal(bands_create(rate_hz, edges, 2, slot, 64, trigger_get_history(call_class, rate_hz, slot),
-                                  &finder->bands),
-                     STATUS_OK);
-    struct trigger_setup setup = {.call_class = call_class,
-                                  .bands = finder->bands,
-                                  .guard = 1,
-                                  .rate_hz = rate_hz,
-                                  .slot_frames = slot,
-                                  .block_slots = 64,
-                                  .frames_per_frame = 1};
-    assert_int_equal(trigger_create(&setup, &finder->trigger), STATUS_OK);
-    finder->block_frames = 64 * slot;
-    finder->block = calloc(finder->block_frames, sizeof(float));
-    assert_non_null(finder->block);
-    random_reset(&finder->random, seed);
-    finder->sink = sink;
-    return finder;
-}
-
-/* Takes the block as it stands. */
-static void finder_push(struct finder *finder)
-{
-    bands_push(finder->bands, finder->block);
-    trigger_push(finder->trigger, &finder->sink, finder->rejections);
-    finder->n_frames += finder->block_frames;
-}
-
-static void finder_noise(struct finder *finder)
-{
-    memset(finder->block, 0, finder->block_frames * sizeof(float));
-    clicks_add_noise(finder->block, finder->block_frames, 1, &finder->random);
-}
-
-static void finder_destroy(struct finder *finder)
-{
-    trigger_destroy(finder->trigger);
-    bands_destroy(finder->bands);
-    free(finder->block);
-    free(finder);
+    assert_near(ideal_threshold(5, 1e-3), 29.5883, 1e-4);
+    assert_near(ideal_threshold(1, 1e-6), 27.6310, 1e-4);
+    assert_near(ideal_detection(5, 10, ideal_threshold(5, 1e-3)), 0.1142, 1e-4);
+    assert_near(ideal_detection(10, 20, ideal_threshold(10, 1e-6)), 0.0194, 1e-4);
+    assert_near(ideal_gamma_tail(2.5, 1), 0.849145, 1e-6); /* scipy.special.gammaincc */
+    assert_near(ideal_gamma_tail(2.5, 12), 0.00021711, 1e-8);
+    assert_near(ideal_poisson_upper(0, 0.975), 3.6889, 1e-4); /* chi2.ppf(0.975, 2 n + 2) / 2 */
+    assert_near(ideal_poisson_upper(5, 0.975), 11.6683, 1e-4);
+    /* Unknown phase, Pfa 1e-6, Pd 0.9: 13.1835 dB of envelope SNR, 2E/N0 3.01 dB more. */
+    assert_near(units_power_db(ideal_matched_lambda(1, 3600e-6, 0.9)) - 3.0103, 13.1835, 1e-3);
 }
 
 #define STEPS 8
@@ -183,6 +83,7 @@ static void false_pulses_are_as_frequent_as_stated(void **state)
             counts.snr[i] = units_power_ratio(lowest_db + 0.5 * i);
         struct pulse_sink sink = {count, &counts};
         struct finder *finder = finder_create(&call_class, cases[c].rate_hz, 1 + c, sink);
+        assert_non_null(finder);
         double seconds = scaled(20, 120, 3600);
         while ((double)finder->n_frames < seconds * cases[c].rate_hz) {
             finder_noise(finder);
@@ -200,21 +101,6 @@ static void false_pulses_are_as_frequent_as_stated(void **state)
         }
         finder_destroy(finder);
     }
-}
-
-/* A pulse that the class's W and T hold: a Gabor pulse in the middle of the band, 95 % of its energy inside.
- */
-static double add_test_pulse(float *out, size_t n, double rate_hz, double frame, double lambda,
-                             const struct call_class *call_class)
-{
-    double sigma_s = 2.0 * 0.159 / (call_class->high_hz - call_class->low_hz) * 1.25;
-    double middle_hz = (call_class->low_hz + call_class->high_hz) / 2;
-    /* Energy A^2 sigma sqrt(pi) / 2 (frequencies far above 1 / sigma); white noise of variance 1 has N0 = 2 /
-     * rate. */
-    double amplitude = sqrt(lambda / rate_hz / (sigma_s * sqrt(M_PI) / 2));
-    if (out)
-        clicks_add_gabor(out, n, rate_hz, frame, amplitude, middle_hz, sigma_s);
-    return amplitude;
 }
 
 struct hits {
@@ -244,6 +130,7 @@ static double detected_share(const struct call_class *call_class, double rate_hz
     struct hits hits = {.reach_frames = call_class->train.pulse_s * rate_hz};
     struct pulse_sink sink = {hit, &hits};
     struct finder *finder = finder_create(call_class, rate_hz, 77, sink);
+    assert_non_null(finder);
     hits.snr = hourly_snr(finder->trigger);
     for (int i = 0; i < 200; i++) {
         finder_noise(finder);
@@ -255,7 +142,7 @@ static double detected_share(const struct call_class *call_class, double rate_hz
         finder_noise(finder);
         if (i % apart == 0) {
             double frame = (0.3 + 0.4 * random_uniform(&finder->random)) * finder->block_frames;
-            add_test_pulse(finder->block, finder->block_frames, rate_hz, frame, lambda, call_class);
+            finder_add_pulse(finder->block, finder->block_frames, rate_hz, frame, lambda, call_class);
             hits.wanted_frame = (double)finder->n_frames + frame;
         }
         finder_push(finder);
@@ -263,15 +150,6 @@ static double detected_share(const struct call_class *call_class, double rate_hz
     trigger_finish(finder->trigger, &sink);
     finder_destroy(finder);
     return (double)hits.n / n;
-}
-
-/* Where a rising share crosses 0.9, between steps of step_db. */
-static double crossing_db(const double *shares, int n, double first_db, double step_db)
-{
-    for (int i = 1; i < n; i++)
-        if (shares[i] >= 0.9)
-            return first_db + step_db * (i - (shares[i] - 0.9) / fmax(1e-9, shares[i] - shares[i - 1]));
-    return INFINITY;
 }
 
 static void single_pulses_are_near_the_ideal(void **state)
@@ -286,14 +164,15 @@ static void single_pulses_are_near_the_ideal(void **state)
     for (size_t c = 0; c < sizeof cases / sizeof cases[0]; c++) {
         struct call_class call_class = class_named(cases[c].name);
         call_class.train.min_guard_db = -60; /* the guard is no part of the comparison */
-        double ideal_db =
-            units_power_db(ideal_lambda(call_class.high_hz - call_class.low_hz, call_class.train.pulse_s));
-        double shares[7];
-        for (int i = 0; i < 7; i++)
-            shares[i] =
-                detected_share(&call_class, cases[c].rate_hz, units_power_ratio(ideal_db - 0.5 + 0.5 * i),
-                               (uint32_t)scaled(100, 400, 4000));
-        double loss_db = crossing_db(shares, 7, -0.5, 0.5);
+        double ideal_db = units_power_db(
+            ideal_energy_lambda(call_class.high_hz - call_class.low_hz, call_class.train.pulse_s, 1, 0.9));
+        double shares[7], levels[7];
+        for (int i = 0; i < 7; i++) {
+            levels[i] = -0.5 + 0.5 * i;
+            shares[i] = detected_share(&call_class, cases[c].rate_hz, units_power_ratio(ideal_db + levels[i]),
+                                       (uint32_t)scaled(100, 400, 4000));
+        }
+        double loss_db = ideal_crossing(levels, shares, 7);
         printf("# figure %s at %.0f kHz: Pd 0.9 at 1 false pulse/h %.2f dB above the ideal energy detector "
                "(2E/N0 %.1f "
                "dB)\n",
@@ -335,7 +214,7 @@ static double trains_given(const struct call_class *call_class, double rate_hz, 
         clicks_add_noise(x, n_frames, 1, &random);
         double t = before_s, interval = interval_s;
         for (int k = 0; k < 8; k++) {
-            add_test_pulse(x, n_frames, rate_hz, t * rate_hz, lambda, call_class);
+            finder_add_pulse(x, n_frames, rate_hz, t * rate_hz, lambda, call_class);
             interval *= exp(0.04 * random_normal(&random)); /* the interval walks */
             t += interval;
         }
@@ -358,15 +237,15 @@ static void trains_are_heard_below_single_pulses(void **state)
     } cases[] = {{"delphinid click train", 96000, 0.06}, {"porpoise click train", 320000, 0.06}};
     for (size_t c = 0; c < sizeof cases / sizeof cases[0]; c++) {
         struct call_class call_class = class_named(cases[c].name);
-        double ideal_db =
-            units_power_db(ideal_lambda(call_class.high_hz - call_class.low_hz, call_class.train.pulse_s));
-        double shares[7];
+        double ideal_db = units_power_db(
+            ideal_energy_lambda(call_class.high_hz - call_class.low_hz, call_class.train.pulse_s, 1, 0.9));
+        double shares[7], levels[7];
         for (int i = 0; i < 7; i++) {
-            shares[i] =
-                trains_given(&call_class, cases[c].rate_hz, units_power_ratio(ideal_db - 2.5 + 0.5 * i),
-                             (uint32_t)scaled(10, 40, 400), cases[c].interval_s);
+            levels[i] = -2.5 + 0.5 * i;
+            shares[i] = trains_given(&call_class, cases[c].rate_hz, units_power_ratio(ideal_db + levels[i]),
+                                     (uint32_t)scaled(10, 40, 400), cases[c].interval_s);
         }
-        double gain_db = -crossing_db(shares, 7, -2.5, 0.5);
+        double gain_db = -ideal_crossing(levels, shares, 7);
         printf("# figure %s: trains of 8, 4 %% jitter, Pd 0.9 at %.2g false trains/h %.2f dB below the "
                "single-pulse "
                "ideal at 1/h (goal 1.5)\n",

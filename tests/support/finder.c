@@ -1,0 +1,79 @@
+/* One class's pulse finder by itself; see finder.h. */
+#include "support/finder.h"
+#include "support/clicks.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define BLOCK_SLOTS 64
+
+static enum status create_parts(struct finder *finder, const struct call_class *call_class, double rate_hz)
+{
+    const struct train_shape *shape = &call_class->train;
+    uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * rate_hz / 6));
+    struct band_edges edges[2] = {{call_class->low_hz, call_class->high_hz},
+                                  {shape->guard_low_hz, shape->guard_high_hz}};
+    struct trigger_setup setup = {.call_class = call_class,
+                                  .guard = 1,
+                                  .rate_hz = rate_hz,
+                                  .slot_frames = slot,
+                                  .block_slots = BLOCK_SLOTS,
+                                  .frames_per_frame = 1};
+    enum status status = bands_create(rate_hz, edges, shape->guard_high_hz > 0 ? 2 : 1, slot, BLOCK_SLOTS,
+                                      trigger_get_history(call_class, rate_hz, slot), &finder->bands);
+    setup.bands = finder->bands;
+    if (status == STATUS_OK)
+        status = trigger_create(&setup, &finder->trigger);
+    finder->block_frames = BLOCK_SLOTS * slot;
+    finder->block = calloc(finder->block_frames, sizeof(float));
+    return finder->block ? status : STATUS_NO_MEMORY;
+}
+
+struct finder *finder_create(const struct call_class *call_class, double rate_hz, uint64_t seed,
+                             struct pulse_sink sink)
+{
+    struct finder *finder = calloc(1, sizeof *finder);
+    if (!finder || create_parts(finder, call_class, rate_hz) != STATUS_OK) {
+        finder_destroy(finder);
+        return NULL;
+    }
+    random_reset(&finder->random, seed);
+    finder->sink = sink;
+    return finder;
+}
+
+void finder_destroy(struct finder *finder)
+{
+    if (!finder)
+        return;
+    trigger_destroy(finder->trigger);
+    bands_destroy(finder->bands);
+    free(finder->block);
+    free(finder);
+}
+
+void finder_noise(struct finder *finder)
+{
+    memset(finder->block, 0, finder->block_frames * sizeof(float));
+    clicks_add_noise(finder->block, finder->block_frames, 1, &finder->random);
+}
+
+void finder_push(struct finder *finder)
+{
+    bands_push(finder->bands, finder->block);
+    trigger_push(finder->trigger, &finder->sink, finder->rejections);
+    finder->n_frames += finder->block_frames;
+}
+
+double finder_add_pulse(float *out, size_t n, double rate_hz, double frame, double lambda,
+                        const struct call_class *call_class)
+{
+    double sigma_s = 2.0 * 0.159 / (call_class->high_hz - call_class->low_hz) * 1.25;
+    double middle_hz = (call_class->low_hz + call_class->high_hz) / 2;
+    /* Energy A^2 sigma sqrt(pi) / 2 (frequencies far above 1 / sigma); white noise of variance 1 has N0 = 2 /
+     * rate. */
+    double amplitude = sqrt(lambda / rate_hz / (sigma_s * sqrt(M_PI) / 2));
+    if (out)
+        clicks_add_gabor(out, n, rate_hz, frame, amplitude, middle_hz, sigma_s);
+    return amplitude;
+}
