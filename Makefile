@@ -30,7 +30,8 @@ LIB_SOURCES = $(wildcard lib/*.c lib/*/*.c)
 DAEMON_SOURCES = $(filter-out $(MAINS),$(wildcard daemon/*.c daemon/*/*.c))
 LIB_OBJECTS = $(LIB_SOURCES:%.c=$(BUILD)/%.o)
 DAEMON_OBJECTS = $(DAEMON_SOURCES:%.c=$(BUILD)/%.o) $(BUILD)/generated/web.o
-SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c tests/support/block_%.c,$(wildcard tests/support/*.c)))
+SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c tests/support/block_%.c,$(wildcard tests/support/*.c)) \
+	$(filter-out tests/bench/calls/main.c,$(wildcard tests/bench/calls/*.c)))
 WEB_FILES = $(wildcard web/*)
 
 PROGRAMS = $(BUILD)/hushwatchd $(BUILD)/hushwatch $(BUILD)/hushwatch-capture
@@ -39,7 +40,7 @@ TEST_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/unit/*.c tests/refere
 BENCH_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/bench/*.c))
 FUZZ_PROGRAMS = $(patsubst %.c,$(BUILD)/%,$(wildcard tests/fuzz/*.c))
 
-.PHONY: all programs fuzzers tests install-needs install-test-needs demo check asan tsan soak fuzz bench clean format
+.PHONY: all programs fuzzers tests install-needs install-test-needs demo check asan tsan soak fuzz bench bench-calls clean format
 all: install-needs
 	@$(MAKE) --no-print-directory -j2 programs
 programs: $(PROGRAMS)
@@ -108,9 +109,28 @@ tsan: install-test-needs
 soak: install-test-needs
 	@$(MAKE) --no-print-directory -j2 tests
 	@/usr/bin/python3 tests/support/run.py --build $(BUILD) --long $(ONLY)
+	@[ -n "$(ONLY)" ] || $(MAKE) --no-print-directory bench-calls PIECE=pool
 bench: install-test-needs
 	@$(MAKE) --no-print-directory -j2 $(PROGRAMS) $(BENCH_PROGRAMS)
 	@for b in $(BENCH_PROGRAMS); do $$b || exit 1; done
+
+# What the detectors can do: PIECE of the bench (tests/bench/calls/main.c), SEED (0: the day's number), SCALE; what is
+# measured stays in build/bench-calls, so that it can be stopped and taken up again. PIECE=sweep draws the plot
+# and writes the table in docs anew from it.
+PIECE ?= all
+SEED ?= 0
+SCALE ?= 1
+BUDGET_S ?= 1200
+bench-calls: install-test-needs
+	@$(MAKE) --no-print-directory -j2 $(BUILD)/tests/bench/calls/main
+	@mkdir -p $(BUILD)/bench-calls
+ifeq ($(PIECE),sweep)
+	@/usr/bin/python3 tests/bench/calls_sweep.py $(BUILD)/bench-calls docs/detectors-sweep.svg
+	@/usr/bin/python3 tests/bench/calls_table.py $(BUILD)/bench-calls docs/detectors.md >/dev/null
+else
+	@$(BUILD)/tests/bench/calls/main $(BUILD)/bench-calls $(PIECE) $(SEED) $(SCALE) $(BUDGET_S)
+	@/usr/bin/python3 tests/bench/calls_table.py $(BUILD)/bench-calls
+endif
 
 # Each fuzzer runs FUZZ_S seconds; what it finds stays in build/fuzz.
 FUZZ_S ?= 60

@@ -1,0 +1,177 @@
+/* One sound that is no animal's by itself, through listen and watch: every call it makes is false, and so is
+ * every contact. Each stretch of at most 20 min is a sea of its own, with ranges and rhythms drawn anew.
+ * Levels and rhythms are of the order that is common practice (no source), those of shrimp as in scene. */
+#include "base/random.h"
+#include "bench/calls/chain.h"
+#include "scene/render.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define STRETCH_S 1200.0
+#define PIECE 4096
+
+/* At a drawn distance and direction; the hydrophone is at the origin. */
+static struct scene_track somewhere(struct random *random, double near_m, double far_m, double depth_m,
+                                    double speed_m_s)
+{
+    double range_m = near_m * pow(far_m / near_m, random_uniform(random));
+    double angle = random_between(random, 0, 2 * M_PI);
+    return (struct scene_track){.at_start = {range_m * cos(angle), range_m * sin(angle), depth_m},
+                                .course_deg = random_between(random, 0, 360),
+                                .speed_m_s = speed_m_s};
+}
+
+static void fill_nothing(struct scene *scene, struct random *random)
+{
+    scene->sea.wind_m_s = random_between(random, 2, 12);
+    scene->sea.shipping = random_between(random, 0, 1);
+}
+
+static void fill_hammer(struct scene *scene, struct random *random)
+{
+    struct scene_hammer *hammer = &scene->hammers[scene->n_hammers++];
+    *hammer = scene_hammer_of();
+    hammer->track = somewhere(random, 300, 5000, 10, 0);
+    hammer->n_steps = 1;
+    hammer->steps[0] = (struct scene_step){.duration_s = scene->duration_s,
+                                           .blow_interval_s = random_between(random, 1, 3),
+                                           .source_energy_level_db = random_between(random, 190, 210)};
+}
+
+static void fill_airguns(struct scene *scene, struct random *random)
+{
+    scene->airguns[scene->n_airguns++] =
+        (struct scene_airguns){.track = somewhere(random, 300, 10000, 6, 0),
+                               .end_s = INFINITY,
+                               .shot_interval_s = random_between(random, 6, 20),
+                               .source_energy_level_db = random_between(random, 215, 230)};
+}
+
+static void add_echosounder(struct scene *scene, struct random *random, double frequency_hz)
+{
+    scene->echosounders[scene->n_echosounders++] =
+        (struct scene_echosounder){.track = somewhere(random, 100, 3000, 3, 0),
+                                   .end_s = INFINITY,
+                                   .frequency_hz = frequency_hz,
+                                   .ping_s = 1e-3 * pow(8, random_uniform(random)),
+                                   .ping_interval_s = 0.1 * pow(20, random_uniform(random)),
+                                   .source_level_db = random_between(random, 180, 205)};
+}
+
+static void fill_echosounder_low(struct scene *scene, struct random *random)
+{
+    add_echosounder(scene, random, random_uniform(random) < 0.5 ? 12000 : 18000);
+}
+
+static void fill_echosounder_middle(struct scene *scene, struct random *random)
+{
+    add_echosounder(scene, random, random_uniform(random) < 0.5 ? 38000 : 50000);
+}
+
+static void fill_echosounder_high(struct scene *scene, struct random *random)
+{
+    add_echosounder(scene, random, 120000);
+}
+
+static void fill_ship(struct scene *scene, struct random *random)
+{
+    struct scene_ship *ship = &scene->ships[scene->n_ships++];
+    *ship = (struct scene_ship){.track = somewhere(random, 200, 3000, 4, random_between(random, 2, 9)),
+                                .n_lines = 12,
+                                .source_level_db = random_between(random, 130, 160)};
+    double blade_hz = random_between(random, 6, 20);
+    for (uint32_t k = 0; k < 6; k++)
+        ship->line_hz[k] = blade_hz * (k + 1);
+    for (uint32_t k = 6; k < 12; k++)
+        ship->line_hz[k] = random_between(random, 50, 3000);
+    scene->sea.shipping = random_between(random, 0.5, 1);
+}
+
+static void fill_shrimp(struct scene *scene, struct random *random)
+{
+    scene->shrimp.snaps_per_s = random_between(random, 2, 25);
+    scene->shrimp.source_level_db = random_between(random, 165, 190);
+}
+
+/* The lowest rate that carries the sound and what it could be taken for. */
+static const struct confounder {
+    const char *name;
+    double rate_hz;
+    void (*fill)(struct scene *scene, struct random *random);
+} confounders[] = {{"the sea alone", 48000, fill_nothing},
+                   {"hammer", 48000, fill_hammer},
+                   {"airguns", 48000, fill_airguns},
+                   {"ship's lines", 48000, fill_ship},
+                   {"echosounder 12 or 18 kHz", 48000, fill_echosounder_low},
+                   {"echosounder 38 or 50 kHz", 128000, fill_echosounder_middle},
+                   {"echosounder 120 kHz", 384000, fill_echosounder_high},
+                   {"snapping shrimp", 384000, fill_shrimp}};
+
+uint32_t calls_confounders_count(void)
+{
+    return sizeof confounders / sizeof confounders[0];
+}
+
+const char *calls_confounder_name(uint32_t number)
+{
+    return confounders[number].name;
+}
+
+struct false_counts {
+    uint32_t n_look, n_act;
+    uint32_t by_class[CATALOGUE_MAX_CLASSES];
+};
+
+static bool run_stretch(const struct catalogue *catalogue, const struct confounder *confounder, uint64_t seed,
+                        double seconds, struct false_counts *counts)
+{
+    static struct scene scene;
+    static struct chain chain;
+    struct random random;
+    struct render *render;
+    float frames[PIECE];
+    random_reset(&random, seed);
+    scene_reset(&scene);
+    scene.seed = seed & 0x7fffffff;
+    scene.rate_hz = confounder->rate_hz;
+    scene.duration_s = seconds;
+    scene.n_hydrophones = 1;
+    scene.hydrophones[0] = chain_hydrophone();
+    confounder->fill(&scene, &random);
+    if (!chain_create(&chain, catalogue, scene.rate_hz) || render_create(&scene, &render) != STATUS_OK)
+        return false;
+    for (uint64_t at = 0; (double)at < seconds * scene.rate_hz; at += PIECE) {
+        render_get(render, at, frames, PIECE);
+        chain_push(&chain, frames, PIECE);
+    }
+    chain_finish(&chain);
+    counts->n_look += chain_count_contacts(&chain, GRADE_LOOK);
+    counts->n_act += chain_count_contacts(&chain, GRADE_ACT);
+    for (uint32_t i = 0; i < chain.n_calls; i++)
+        counts->by_class[chain.calls[i].class_index]++;
+    render_destroy(render);
+    chain_destroy(&chain);
+    return true;
+}
+
+json_t *calls_confounder(const struct calls_setup *setup, uint32_t number, double hours)
+{
+    const struct confounder *confounder = &confounders[number];
+    const struct catalogue *catalogue = setup->catalogue;
+    struct false_counts counts = {0};
+    json_t *calls = json_object();
+    double done_s = 0;
+    for (uint32_t i = 0; done_s < hours * 3600 - 1; i++) {
+        double seconds = fmin(STRETCH_S, hours * 3600 - done_s);
+        if (!run_stretch(catalogue, confounder, calls_seed(setup, 7 + number, i), seconds, &counts))
+            return NULL;
+        done_s += seconds;
+    }
+    for (uint32_t c = 0; c < catalogue->n_classes; c++)
+        if (counts.by_class[c] > 0)
+            json_object_set_new(calls, catalogue->classes[c].name, json_integer(counts.by_class[c]));
+    return json_pack("{s:s, s:f, s:f, s:i, s:i, s:o}", "sound", confounder->name, "rate_hz",
+                     confounder->rate_hz, "hours", done_s / 3600, "looks", (int)counts.n_look, "acts",
+                     (int)counts.n_act, "calls", calls);
+}
