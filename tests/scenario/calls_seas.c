@@ -116,7 +116,7 @@ static void confounders_alone_raise_no_alarm(void **state)
 static void calls_are_matched_one_to_one(void **state)
 {
     (void)state;
-    const struct voice voices[] = {{.voice = VOICE_DELPHINID_WHISTLE}, {.voice = VOICE_SPERM_CLICKS}};
+    const struct voice voices[] = {{.kind = "delphinid whistle"}, {.kind = "sperm whale clicks"}};
     struct truth_call truths[] = {
         {.voice = 0, .group = GROUP_DELPHINID, .form = CALL_TONE, .start_s = 1, .end_s = 2},
         {.voice = 0, .group = GROUP_DELPHINID, .form = CALL_TONE, .start_s = 3, .end_s = 4},

@@ -99,14 +99,47 @@ static const struct confounder {
     const char *name;
     double rate_hz;
     void (*fill)(struct scene *scene, struct random *random);
-} confounders[] = {{"the sea alone", 48000, fill_nothing},
-                   {"hammer", 48000, fill_hammer},
-                   {"airguns", 48000, fill_airguns},
-                   {"ship's lines", 48000, fill_ship},
-                   {"echosounder 12 or 18 kHz", 48000, fill_echosounder_low},
-                   {"echosounder 38 or 50 kHz", 128000, fill_echosounder_middle},
-                   {"echosounder 120 kHz", 384000, fill_echosounder_high},
-                   {"snapping shrimp", 384000, fill_shrimp}};
+    double near_m, far_m; /* of an emitter of that kind */
+} confounders[] = {{"the sea alone", 48000, fill_nothing, 0, 0},
+                   {"hammer", 48000, fill_hammer, 0, 0},
+                   {"airguns", 48000, fill_airguns, 0, 0},
+                   {"ship's lines", 48000, fill_ship, 0, 0},
+                   {"echosounder 12 or 18 kHz", 48000, fill_echosounder_low, 0, 0},
+                   {"echosounder 38 or 50 kHz", 128000, fill_echosounder_middle, 0, 0},
+                   {"echosounder 120 kHz", 384000, fill_echosounder_high, 0, 0},
+                   {"snapping shrimp", 384000, fill_shrimp, 0, 0},
+                   {"naval sonar", 48000, NULL, 2000, 20000},
+                   {"hopping modem", 96000, NULL, 200, 4000},
+                   {"chirp modem", 96000, NULL, 200, 4000},
+                   {"janus modem", 48000, NULL, 200, 4000},
+                   {"beacon", 96000, NULL, 100, 2000},
+                   {"net pinger", 48000, NULL, 50, 1000},
+                   {"sweeping net pinger", 384000, NULL, 50, 1000},
+                   {"deterrent", 384000, NULL, 100, 2000},
+                   {"charge", 48000, NULL, 500, 8000},
+                   {"ship cavitation", 48000, NULL, 200, 3000},
+                   {"rain", 96000, NULL, 0, 0},
+                   {"flow noise", 48000, NULL, 0, 0},
+                   {"thruster", 96000, NULL, 100, 2000},
+                   {"strum", 48000, NULL, 0, 0},
+                   {"mains pick-up", 48000, NULL, 0, 0},
+                   {"supply pick-up", 384000, NULL, 0, 0},
+                   {"fish hum", 48000, NULL, 3, 100},
+                   {"fish grunts", 48000, NULL, 3, 100},
+                   {"fish knocks", 48000, NULL, 3, 100},
+                   {"ice cracks", 48000, NULL, 200, 5000},
+                   {"ice squeals", 48000, NULL, 200, 5000}};
+
+static void fill(const struct confounder *confounder, struct scene *scene, struct random *random)
+{
+    if (confounder->fill) {
+        confounder->fill(scene, random);
+        return;
+    }
+    struct scene_emitter *emitter = &scene->emitters[scene->n_emitters++];
+    *emitter = scene_emitter_of(confounder->name);
+    emitter->track = somewhere(random, fmax(1, confounder->near_m), fmax(1.1, confounder->far_m), 8, 0);
+}
 
 uint32_t calls_confounders_count(void)
 {
@@ -138,7 +171,7 @@ static bool run_stretch(const struct catalogue *catalogue, const struct confound
     scene.duration_s = seconds;
     scene.n_hydrophones = 1;
     scene.hydrophones[0] = chain_hydrophone();
-    confounder->fill(&scene, &random);
+    fill(confounder, &scene, &random);
     if (!chain_create(&chain, catalogue, scene.rate_hz) || render_create(&scene, &render) != STATUS_OK)
         return false;
     for (uint64_t at = 0; (double)at < seconds * scene.rate_hz; at += PIECE) {

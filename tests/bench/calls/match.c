@@ -138,11 +138,10 @@ json_t *match_rows(const struct match *match)
         json_array_append_new(
             rows,
             json_pack("{s:s, s:f, s:i, s:i, s:i, s:i, s:o, s:i, s:i, s:o, s:o}", "voice",
-                      scene_voice_text(match->voices[v].voice), "snr_db", match->voices[v].snr_db, "calls",
-                      (int)sums.n, "found", (int)sums.n_found, "pulses", (int)sums.n_pulses, "pulses_given",
-                      (int)sums.n_given, "recall",
-                      train ? share(sums.n_given, sums.n_pulses) : share(sums.n_found, sums.n), "entries",
-                      (int)sums.n_calls, "entry_pulses", (int)sums.n_call_pulses, "precision",
+                      match->voices[v].kind, "snr_db", match->voices[v].snr_db, "calls", (int)sums.n, "found",
+                      (int)sums.n_found, "pulses", (int)sums.n_pulses, "pulses_given", (int)sums.n_given,
+                      "recall", train ? share(sums.n_given, sums.n_pulses) : share(sums.n_found, sums.n),
+                      "entries", (int)sums.n_calls, "entry_pulses", (int)sums.n_call_pulses, "precision",
                       train ? share(sums.n_right_pulses, sums.n_call_pulses)
                             : share(sums.n_right, sums.n_calls),
                       "right_group", share(sums.n_of_group, sums.n_calls)));
@@ -160,7 +159,7 @@ static const char *truly(const struct match *match, const struct chain_call *cal
         double weight = common + (is_of(&match->truths[t], call) ? 1e6 : 0); /* its own group first */
         if (common > 0 && weight > best_s) {
             best_s = weight;
-            name = scene_voice_text(match->voices[match->truths[t].voice].voice);
+            name = match->voices[match->truths[t].voice].kind;
         }
     }
     return name;

@@ -54,8 +54,21 @@ static void add_shrimp(struct scene *scene, double snaps_per_s)
     scene->shrimp.source_level_db = 170;
 }
 
+static void add_emitter(struct scene *scene, const char *kind, double x_m, double y_m)
+{
+    struct scene_emitter *emitter = &scene->emitters[scene->n_emitters++];
+    *emitter = scene_emitter_of(kind);
+    emitter->track.at_start = (struct scene_place){x_m, y_m, 8};
+}
+
 static void fill_coast(struct scene *scene)
 {
+    add_emitter(scene, "naval sonar", 6000, 7000);
+    add_emitter(scene, "janus modem", 1500, -2500);
+    add_emitter(scene, "beacon", -900, 1200);
+    add_emitter(scene, "net pinger", 300, -700);
+    add_emitter(scene, "ship cavitation", 1500, -800);
+    add_emitter(scene, "fish grunts", 20, 30);
     add_ship(scene);
     add_hammer(scene);
     add_shrimp(scene, 5);
@@ -94,23 +107,23 @@ static void fill_low(struct scene *scene)
 
 #define WHISTLES                                                                                             \
     {                                                                                                        \
-        VOICE_DELPHINID_WHISTLE, 10, 2, 0.6, 0, 0.0107, 0, 0                                                 \
+        "delphinid whistle", 10, 2, 0.6, 0, 0.0107, 0, 0                                                     \
     }
 #define SPERM                                                                                                \
     {                                                                                                        \
-        VOICE_SPERM_CLICKS, 15, 8, 6, 24, 0, 5000, 20000                                                     \
+        "sperm whale clicks", 15, 8, 6, 24, 0, 5000, 20000                                                   \
     }
 #define HUMPBACK                                                                                             \
     {                                                                                                        \
-        VOICE_HUMPBACK_SONG, 10, 4, 1.5, 0, 0.04, 0, 0                                                       \
+        "humpback song", 10, 4, 1.5, 0, 0.04, 0, 0                                                           \
     }
 #define UPCALLS                                                                                              \
     {                                                                                                        \
-        VOICE_RIGHT_UPCALL, 10, 8, 3, 0, 0.128, 0, 0                                                         \
+        "right whale upcall", 10, 8, 3, 0, 0.128, 0, 0                                                       \
     }
 #define DELPHINID                                                                                            \
     {                                                                                                        \
-        VOICE_DELPHINID_CLICKS, 20, 3, 1.5, 30, 0, 25000, 45000                                              \
+        "delphinid clicks", 20, 3, 1.5, 30, 0, 25000, 45000                                                  \
     }
 
 static const struct sea seas[] = {
@@ -121,20 +134,20 @@ static const struct sea seas[] = {
      20,
      40,
      fill_ultrasonic,
-     {{VOICE_BEAKED_CLICKS, 15, 5, 4, 24, 0, 25000, 60000}, DELPHINID, WHISTLES}},
+     {{"beaked whale clicks", 15, 5, 4, 24, 0, 25000, 60000}, DELPHINID, WHISTLES}},
     {"shallow, 384 kHz",
      384000,
      15,
      20,
      fill_high,
-     {{VOICE_PORPOISE_CLICKS, 15, 3, 1.5, 20, 0, 110000, 150000}, DELPHINID, WHISTLES}},
+     {{"porpoise clicks", 15, 3, 1.5, 20, 0, 110000, 150000}, DELPHINID, WHISTLES}},
     {"low, 8 kHz",
      8000,
      60,
      60,
      fill_low,
-     {{VOICE_FIN_PULSE, 10, 14, 6, 0, 1.0, 0, 0},
-      {VOICE_BLUE_MOAN, 10, 20, 10, 0, 2.0, 0, 0},
+     {{"fin whale pulse", 10, 14, 6, 0, 1.0, 0, 0},
+      {"blue whale moan", 10, 20, 10, 0, 2.0, 0, 0},
       UPCALLS,
       HUMPBACK}},
 };
@@ -224,7 +237,7 @@ static bool add_calls(struct sailing *sailing, uint32_t v, const float *medians,
         if (!truth || !(gain > 0))
             return false;
         truth->voice = v;
-        truth->group = scene_voice_group(voice->voice);
+        truth->group = scene_kind_find(voice->kind)->group;
         truth->form = emission->n_pulses > 0 ? CALL_TRAIN : CALL_TONE;
         voice_add(emission, gain, at_s - stretch->start_s, stretch, truth);
         sailing->next_s[v] = at_s + length_s + voice->least_gap_s +
@@ -272,7 +285,7 @@ static double count_others(const struct scene *scene)
  * that are none of its own, over all there were. Shares are kept from 0 and 1 by half a count. */
 static json_t *discriminability(const struct sailing *sailing, const struct match *match)
 {
-    enum group group = scene_voice_group(sailing->sea->voices[0].voice);
+    enum group group = scene_kind_find(sailing->sea->voices[0].kind)->group;
     double own = 0, own_given = 0, others = count_others(&sailing->scene), others_given = 0;
     for (uint32_t t = 0; t < sailing->n_truths; t++) {
         const struct truth_call *truth = &sailing->truths[t];

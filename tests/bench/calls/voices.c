@@ -69,11 +69,15 @@ double stretch_deviation(const struct stretch *stretch, double low_hz, double hi
 
 void voice_draw(const struct voice *voice, double rate_hz, struct random *random, struct emission *out)
 {
-    struct scene_animal animal = scene_animal_of(voice->voice);
+    struct scene_emitter animal = scene_emitter_of(voice->kind);
     animal.pulses = voice->pulses;
+    struct kind_order order = {.emitter = &animal,
+                               .rate_hz = rate_hz,
+                               .repertoire = 1 + random_bits(random) % 5,
+                               .number = 1 + random_bits(random) % 1000,
+                               .unit = (uint32_t)(random_bits(random) % 8)};
     memset(out, 0, sizeof *out);
-    recipe_call(&animal, rate_hz, random, 1 + random_bits(random) % 5, (uint32_t)(random_bits(random) % 8),
-                out);
+    kind_make(&order, random, out);
     for (uint32_t i = 0; i < out->n_pulses; i++)
         out->pulse_gain[i] = (float)units_amplitude_ratio(LEVEL_SPREAD_DB * random_normal(random));
 }
@@ -90,11 +94,11 @@ static uint32_t strongest_part(const struct sound *sound)
 static void add_sound(const struct sound *sound, double scale, double at_s, double rate_hz, float *out,
                       uint32_t n)
 {
-    static const double ones[SOUND_MAX_PARTS] = {1, 1, 1, 1, 1, 1, 1, 1};
+    static const double ones[SOUND_MAX_PARTS] = {1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1};
     double first = fmax(0, ceil(at_s * rate_hz));
     double last = fmin(n, floor((at_s + sound->length_s) * rate_hz) + 1);
     if (last > first)
-        sound_add(sound, ones, scale, scale, first / rate_hz - at_s, 1 / rate_hz, (uint32_t)(last - first),
+        sound_add(sound, 0, ones, scale, scale, first / rate_hz - at_s, 1 / rate_hz, (uint32_t)(last - first),
                   out + (size_t)first);
 }
 

@@ -6,10 +6,11 @@
 #include "base/random.h"
 #include "bench/calls/calls.h"
 #include "scene/emission.h"
+#include "scene/kind.h"
 
 /* How one kind of call is heard in a sea. */
 struct voice {
-    enum scene_voice voice;
+    const char *kind;  /* of lib/scene */
     double snr_db;     /* tone: mean cell power over the median of the noise in the same bin; pulse: 20
                           lg(envelope's peak / standard deviation of the noise in the band) */
     double mean_gap_s; /* exponential, from one call's end to the next's start */
