@@ -101,7 +101,8 @@ static json_t *all_seas(const struct calls_setup *setup)
 {
     json_t *rows = json_array();
     for (uint32_t i = 0; i < calls_seas_count(); i++)
-        json_array_append_new(rows, calls_sea(setup, i));
+        if (json_array_append_new(rows, calls_sea(setup, i)) != 0)
+            return NULL;
     return json_pack("{s:o}", "rows", rows);
 }
 
@@ -110,7 +111,8 @@ static json_t *all_confounders(const struct calls_setup *setup)
 {
     json_t *rows = json_array();
     for (uint32_t i = 0; i < calls_confounders_count(); i++)
-        json_array_append_new(rows, calls_confounder(setup, i, setup->scale));
+        if (json_array_append_new(rows, calls_confounder(setup, i, setup->scale)) != 0)
+            return NULL;
     return json_pack("{s:o}", "rows", rows);
 }
 

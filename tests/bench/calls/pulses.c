@@ -159,8 +159,9 @@ json_t *calls_pulses(const struct calls_setup *setup)
     json_t *rows = json_array();
     for (uint32_t c = 0; c < setup->catalogue->n_classes; c++) {
         const struct call_class *call_class = &setup->catalogue->classes[c];
-        if (call_class->form == CALL_TRAIN && call_class->animal)
-            json_array_append_new(rows, measure(setup, call_class, c));
+        if (call_class->form == CALL_TRAIN && call_class->animal &&
+            json_array_append_new(rows, measure(setup, call_class, c)) != 0)
+            return NULL;
     }
     return json_pack("{s:o}", "rows", rows);
 }

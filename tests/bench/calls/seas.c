@@ -66,6 +66,7 @@ static void fill_coast(struct scene *scene)
     add_emitter(scene, "naval sonar", 6000, 7000);
     add_emitter(scene, "janus modem", 1500, -2500);
     add_emitter(scene, "beacon", -900, 1200);
+    scene_emitter_set(&scene->emitters[scene->n_emitters - 1], "frequency_hz", 9500);
     add_emitter(scene, "net pinger", 300, -700);
     add_emitter(scene, "ship cavitation", 1500, -800);
     add_emitter(scene, "fish grunts", 20, 30);
