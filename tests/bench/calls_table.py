@@ -103,7 +103,7 @@ def seas(table, piece):
             met = None if recall is None else (row["recall"] or 0) >= recall and (
                 precision is None or (row["precision"] or 0) >= precision)
             trials = "%d clicks" % row["pulses"] if row["pulses"] else "%d calls" % row["calls"]
-            table.add("sea: " + sea["sea"], "%s at %.0f dB" % (row["voice"], row["snr_db"]),
+            table.add("sea: %s, %.0f min" % (sea["sea"], sea["minutes"]), "%s at %.0f dB" % (row["voice"], row["snr_db"]),
                       "recall %s, precision %s (right group %s)" % (
                           percent(row["recall"]), percent(row["precision"]), percent(row["right_group"])),
                       goal, met, trials, piece["seed"])
@@ -171,7 +171,7 @@ def confounders(table, rows, seed):
                       24 * acts / hours, 24 * upper(acts) / hours, looks / hours, upper(looks) / hours,
                       "; calls: " + made if made else ""),
                   "act 0.4 a day, look 1 an hour", 24 * acts / hours <= 0.4 and looks / hours <= 1,
-                  "%.1f h" % hours, seed)
+                  "%.2f h" % hours, seed)
 
 
 def costs(table, piece):
@@ -197,9 +197,9 @@ def confusion(pieces):
         for name, n in row["calls"].items():
             cells[name, row["sound"]] = cells.get((name, row["sound"]), 0) + n
     names = sorted({name for name, _ in cells})
-    lines = ["| calls of class | " + " | ".join(sounds) + " |", "|---" * (len(sounds) + 1) + "|"]
-    for name in names:
-        lines.append("| %s | %s |" % (name, " | ".join(str(cells.get((name, s), 0)) for s in sounds)))
+    lines = ["| sound | " + " | ".join(names) + " |", "|---" * (len(names) + 1) + "|"]
+    for sound in sounds:
+        lines.append("| %s | %s |" % (sound, " | ".join(str(cells.get((n, sound), "")) for n in names)))
     return lines
 
 
