@@ -111,7 +111,7 @@ static enum status open_ledger(struct chain *chain, struct problems *problems)
         n_channels[i] = stream_get_facts(chain->streams[i])->n_channels;
     status = rules_create_watch(chain->rules, site, chain->n_streams, n_channels, &chain->watch);
     if (status == STATUS_OK)
-        status = rules_create_tally(chain->rules, site, chain->n_streams, &chain->tally);
+        status = rules_create_tally(chain->rules, site, chain->n_streams, n_channels, &chain->tally);
     if (status == STATUS_OK)
         status = restore_watch(chain->ledger, chain->watch, chain->tally, &chain->restored, problem);
     if (status != STATUS_OK && *problem)

@@ -1,6 +1,7 @@
 /* What a run judges by; see rules.h. */
 #include "rules.h"
 #include "files.h"
+#include "listen/measuring.h"
 #include "sea/sound_speed.h"
 #include "settings/catalogue.h"
 #include "settings/permit.h"
@@ -111,8 +112,19 @@ static double inner_m(const struct source_settings *source)
                                               : EXPOSURE_NEAREST_M;
 }
 
+/* Of continuous sound the same channel counts as of impulses. */
+static void choose_references(const struct site *site, const uint32_t *n_channels, struct tally_setup *setup)
+{
+    for (uint32_t i = 0; i < setup->n_streams; i++) {
+        struct calibration calibration[FLOW_MAX_CHANNELS];
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
+            calibration[c] = site->streams[i].channels[c].calibration;
+        setup->reference[i] = measuring_choose(n_channels[i], calibration, setup->range_m[i]).reference;
+    }
+}
+
 enum status rules_create_tally(const struct rules *rules, const struct site *site, uint32_t n_streams,
-                               struct tally **out_tally)
+                               const uint32_t *n_channels, struct tally **out_tally)
 {
     *out_tally = NULL;
     if (rules->criteria.n == 0)
@@ -143,6 +155,7 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
             bool follows = site->streams[i].place.known || site->position.moves == RANGES_ARRAY;
             setup->range_m[i][c] = follows ? (double)NAN : channel_range_m(channel);
         }
+    choose_references(site, n_channels, setup);
     enum status status = tally_create(setup, out_tally);
     free(setup);
     return status;

@@ -30,6 +30,6 @@ void rules_destroy(struct rules *rules);
 enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                const uint32_t *n_channels, struct watch **out);
 enum status rules_create_tally(const struct rules *rules, const struct site *site, uint32_t n_streams,
-                               struct tally **out_tally);
+                               const uint32_t *n_channels, struct tally **out_tally);
 
 #endif

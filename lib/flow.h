@@ -218,17 +218,21 @@ struct source_reduction {
     double db, low_db, high_db;     /* the bounds: every band at its bound at once */
 };
 
-/* Three numbers about the source that are never mixed, of the job's median impulse so far. */
+/* Three numbers about the source that are never mixed, of the job's median impulse so far; of continuous
+ * sound, of its median second while the source was said to sound. */
 struct source_outcome {
     uint32_t stream, channel;
     char job[IMPULSE_JOB_SIZE];
     uint32_t n_impulses;
-    double range_m;                                        /* to the channel; NAN where unknown */
-    double sel_db;                                         /* received, median */
-    double peak_db;                                        /* received, highest */
-    double at_750_m_db, at_750_m_low_db, at_750_m_high_db; /* SEL, with its 90 % interval */
-    double back_db, back_low_db, back_high_db; /* energy source level; NAN where it has no meaning */
-    char model[NOTE_NAME_SIZE];                /* the loss law */
+    uint32_t n_seconds; /* of continuous sound; 0 for impulses */
+    double range_m;     /* to the channel; NAN where unknown */
+    double sel_db;      /* received, median; NAN for continuous sound */
+    double spl_db;      /* received, median of the seconds; NAN for impulses */
+    double peak_db;     /* received, highest */
+    double at_750_m_db, at_750_m_low_db, at_750_m_high_db; /* SEL or SPL, with its 90 % interval */
+    double back_db, back_low_db,
+        back_high_db; /* energy source level, or source level of an SPL; NAN where it has no meaning */
+    char model[NOTE_NAME_SIZE];       /* the loss law */
     double n_db, n_low_db, n_high_db; /* with its 90 % interval: fitted, or as unsure as it was set */
     bool fitted;                      /* to the job's blows, and not set */
     double range_low_m, range_high_m; /* of the fit; NAN where it was set */

@@ -77,12 +77,12 @@ function number(name) {
 function drawNumbers(state) {
   keyed($("numbers"), state.sources, place, () => el("dl", { class: "three" }, number("received"), number("at_750"), number("back")), (node, s) => {
     const of = (name, texts) => [...node.querySelector("." + name).children].forEach((child, i) => setText(child, texts[i]));
-    const unknown = s.reason || "not known";
-    of("received", [`Received${at(state, s)}`, s.sel_db === null ? "no level" : `SEL ${db(s.sel_db)} dB`,
-      `median of ${s.n_impulses}; highest peak ${db(s.peak_db)} dB; ` + (s.range_m === null ? "range unknown" : "at " + metres(s.range_m))]);
-    of("at_750", ["At 750 m", s.at_750_m_db === null ? "none" : `SEL ${db(s.at_750_m_db)} dB`,
+    const unknown = s.reason || "not known", steady = s.spl_db !== null, metric = steady ? "SPL" : "SEL", level = steady ? s.spl_db : s.sel_db;
+    of("received", [`Received${at(state, s)}`, level === null ? "no level" : `${metric} ${db(level)} dB`,
+      `median of ${steady ? s.n_seconds.toLocaleString("en") + " s in which the source was said to sound" : s.n_impulses}; highest peak ${db(s.peak_db)} dB; ` + (s.range_m === null ? "range unknown" : "at " + metres(s.range_m))]);
+    of("at_750", ["At 750 m", s.at_750_m_db === null ? "none" : `${metric} ${db(s.at_750_m_db)} dB`,
       s.at_750_m_db === null ? unknown : `90 %: ${range(s.at_750_m_low_db, s.at_750_m_high_db)}; ${law(s)}`]);
-    of("back", ["Energy source level", s.back_db === null ? "none" : `${db(s.back_db)} dB`, s.back_db === null ? unknown : `90 %: ${range(s.back_low_db, s.back_high_db)}; worked back to 1 m`]);
+    of("back", [steady ? "Source level" : "Energy source level", s.back_db === null ? "none" : `${db(s.back_db)} dB`, s.back_db === null ? unknown : `90 %: ${range(s.back_low_db, s.back_high_db)}; worked back to 1 m`]);
   });
 }
 
@@ -225,7 +225,7 @@ export function drawResearch(state) {
 
 export function drawSums(state, zones) {
   drawWarnings(state);
-  $("sums").hidden = !state.curve.length && !state.sources.length && !state.exposures.length; // continuous sound has criteria alone
+  $("sums").hidden = !state.curve.length && !state.sources.length && !state.exposures.length;
   if ($("sums").hidden) return;
   drawCurves(state);
   drawNumbers(state);

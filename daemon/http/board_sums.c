@@ -97,6 +97,8 @@ static void source(struct text *text, const struct source_outcome *source)
     json_number(text, "channel", source->channel, 0);
     json_text(text, "job", source->job);
     json_number(text, "n_impulses", source->n_impulses, 0);
+    json_number(text, "n_seconds", source->n_seconds, 0);
+    json_number(text, "spl_db", source->spl_db, ROUND_DECIMALS_DB);
     json_number(text, "range_m", source->range_m, ROUND_DECIMALS_M);
     json_number(text, "sel_db", source->sel_db, ROUND_DECIMALS_DB);
     json_number(text, "peak_db", source->peak_db, ROUND_DECIMALS_DB);

@@ -73,6 +73,7 @@ static void put_counts(struct body *body, const struct source_outcome *source)
     body_integer(body, "n_quieting_on", source->n_quieting_on);
     body_integer(body, "n_refused", source->n_refused);
     body_integer(body, "n_relative", source->n_relative);
+    body_integer(body, "n_seconds", source->n_seconds);
     body_integer(body, "n_unknown", source->n_unknown);
     body_integer(body, "n_weak", source->n_weak);
 }
@@ -115,6 +116,7 @@ enum status body_of_source(const struct outcome *outcome, struct text *out)
     body_text_or_null(&body, "reason", source->reason);
     put_reductions(&body, source);
     body_number(&body, "sel_db", source->sel_db, ROUND_DECIMALS_DB);
+    body_number(&body, "spl_db", source->spl_db, ROUND_DECIMALS_DB);
     body_integer(&body, "stream", source->stream);
     body_text_or_null(&body, "warning", source->warning);
     return body_end(&body);

@@ -40,7 +40,8 @@ const struct schema_object views_schema[] = {
         COLUMN("insertion_bands_high_db") COLUMN("reductions") COLUMN("n_quieting_off") COLUMN("n_quieting_on")
         COLUMN("quieting_falls_db") COLUMN("warning") COLUMN("n_clipped") COLUMN("n_overlapped")
         COLUMN("n_weak") COLUMN("n_other") COLUMN("n_unknown") COLUMN("n_relative") COLUMN("n_refused")
-        COLUMN("n_low_db") COLUMN("n_high_db") COLUMN("fitted") COLUMN("range_low_m") COLUMN("range_high_m")),
+        COLUMN("n_low_db") COLUMN("n_high_db") COLUMN("fitted") COLUMN("range_low_m") COLUMN("range_high_m")
+        COLUMN("n_seconds") COLUMN("spl_db")),
     VIEW("call",
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")

@@ -168,11 +168,13 @@ static void check_quieting(struct tally *tally, uint32_t i, int64_t watch_ns, co
 static void say_source(struct tally *tally, uint32_t i, uint32_t channel, int64_t watch_ns,
                        const struct outcome_sink *sink)
 {
+    const enum criterion_metric metric =
+        tally->setup.sound == SOUND_CONTINUOUS ? METRIC_SPL : METRIC_SEL_SINGLE;
     struct sums *sums = &tally->sums[i];
     struct tally_channel *heard = &sums->channels[channel - 1];
     struct outcome outcome = {.kind = OUTCOME_SOURCE, .run = tally->run, .watch_ns = watch_ns};
     struct source_outcome *out = &outcome.as.source;
-    struct source_measurement measured = {.metric = METRIC_SEL_SINGLE,
+    struct source_measurement measured = {.metric = metric,
                                           .low_hz = 10,
                                           .high_hz = 2e4,
                                           .spread_db = tally->setup.level_spread_db,
@@ -267,6 +269,8 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         tally_take_level(tally, event->stream, &event->as.level);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
         tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
+    else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_SOURCE)
+        tally_sounding_take(&tally->sounding, &event->as.note, outcome->watch_ns);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {
         say_all(tally, outcome->watch_ns, sink);
         tally_begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "",

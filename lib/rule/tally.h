@@ -4,12 +4,14 @@
  *
  * The range of each sound is what the watch said of it. Without one only what was received is summed.
  *
- * Only impulses that the watch called ours are summed, only on calibrated channels, of the reference channel
- * of each stream (rule/blows.h); another project's never are. What channels beside it measure says how sound
- * falls with range: once a fit stands (rule/tally_fit.h), it moves levels to 750 m and to the distances of
- * criteria instead of the N that was set, in the band it was fitted on, until the job ends; what was summed
- * before stays as it was moved then. State is a function of the outcomes taken: taking them again from a
- * ledger rebuilds it. Call order: create; take every outcome of the watch in order; destroy. */
+ * Of continuous sound the seconds are summed in which the source was said to sound, at some moment of them,
+ * by what was known then; of one channel of each stream. Of impulses: only those that the watch called ours
+ * are summed, only on calibrated channels, of the reference channel of each stream (rule/blows.h); another
+ * project's never are. What channels beside it measure says how sound falls with range: once a fit stands
+ * (rule/tally_fit.h), it moves levels to 750 m and to the distances of criteria instead of the N that was
+ * set, in the band it was fitted on, until the job ends; what was summed before stays as it was moved then.
+ * State is a function of the outcomes taken: taking them again from a ledger rebuilds it. Call order: create;
+ * take every outcome of the watch in order; destroy. */
 #ifndef RULE_TALLY_H
 #define RULE_TALLY_H
 
@@ -32,6 +34,8 @@ struct tally_setup {
     double range_m[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS]; /* slant, from the source; NAN where unknown. For
                                                            * sound of whose range the watch said nothing */
     enum channel_role role[TALLY_MAX_STREAMS][FLOW_MAX_CHANNELS];
+    uint32_t reference[TALLY_MAX_STREAMS]; /* whose seconds of continuous sound are summed; 0: the first that
+                                              comes */
     struct source_shape shape;
     double loss_n_db, loss_n_spread_db;  /* N lg r; how unsure N is, one standard deviation */
     struct absorption water;             /* of the sea: added to N lg r at each frequency */

@@ -44,6 +44,21 @@ void tally_channel_push(struct tally_channel *channel, const struct impulse *imp
     tally_channel_add_energy(impulse, channel->energy);
 }
 
+void tally_channel_push_level(struct tally_channel *channel, const struct level *level, double range_m)
+{
+    channel->changed = true;
+    channel->counts.n_relative += level->relative;
+    if (level->relative || !isfinite(level->spl_db))
+        return;
+    bool highest = channel->n_impulses == 0 || level->peak_db > channel->peak_db;
+    channel->peak_db = highest ? level->peak_db : channel->peak_db;
+    channel->range_m[channel->n_impulses % TALLY_KEPT_IMPULSES] = (float)range_m;
+    channel->sel_db[channel->n_impulses++ % TALLY_KEPT_IMPULSES] = (float)level->spl_db;
+    for (uint32_t b = 0; b < level->n_bands && b < LEVEL_MAX_BANDS; b++)
+        if (isfinite(level->band_db[b]))
+            channel->energy[b] += units_power_ratio(level->band_db[b]);
+}
+
 bool tally_channel_band(const struct tally_channel *channel, double *out_low_hz, double *out_high_hz)
 {
     return tally_fit_band(channel->energy, 0.1, 0.9, out_low_hz, out_high_hz);
@@ -70,9 +85,13 @@ void tally_channel_fill(const struct tally_channel *channel, const struct source
 {
     struct source_measurement measurement = *measured;
     struct source_numbers numbers;
-    out->n_impulses = channel->n_impulses;
+    const bool seconds = measured->metric == METRIC_SPL;
+    out->n_impulses = seconds ? 0 : channel->n_impulses;
+    out->n_seconds = seconds ? channel->n_impulses : 0;
     tally_counts_fill(&channel->counts, out);
-    out->sel_db = measurement.level_db = tally_median_db(channel);
+    measurement.level_db = tally_median_db(channel);
+    out->sel_db = seconds ? NAN : measurement.level_db;
+    out->spl_db = seconds ? measurement.level_db : NAN;
     uint32_t n_placed = tally_placed_median(channel, &law->loss, &measurement);
     out->range_m = measurement.range_m;
     out->peak_db = channel->n_impulses > 0 && isfinite(channel->peak_db) ? channel->peak_db : NAN;
@@ -80,7 +99,9 @@ void tally_channel_fill(const struct tally_channel *channel, const struct source
     out->back_db = out->back_low_db = out->back_high_db = NAN;
     out->n_db = out->n_low_db = out->n_high_db = out->range_low_m = out->range_high_m = NAN;
     if (source_numbers_get(&measurement, shape, law, &numbers) != STATUS_OK) {
-        snprintf(out->reason, sizeof out->reason, "no impulse with a level in dB re 1 uPa");
+        snprintf(out->reason, sizeof out->reason,
+                 seconds ? "no second with a level in dB re 1 uPa"
+                         : "no impulse with a level in dB re 1 uPa");
         return;
     }
     if (numbers.at_750_m.known) {

@@ -1,5 +1,5 @@
-/* What one channel heard of a job's own impulses, and the three numbers of the source that follow from it
- * (level/source.h). For lib/rule/tally only. */
+/* What one channel heard of a job's own impulses or seconds of continuous sound, and the three numbers of the
+ * source that follow from it (level/source.h). For lib/rule/tally only. */
 #ifndef RULE_TALLY_CHANNEL_H
 #define RULE_TALLY_CHANNEL_H
 
@@ -14,13 +14,13 @@
 
 /* Plain data; all 0 is a channel that heard nothing. */
 struct tally_channel {
-    uint32_t n_impulses;
-    float sel_db[TALLY_KEPT_IMPULSES];  /* a ring */
+    uint32_t n_impulses;                /* or seconds, where the sound is continuous */
+    float sel_db[TALLY_KEPT_IMPULSES];  /* a ring; SPL of seconds */
     float range_m[TALLY_KEPT_IMPULSES]; /* of each of them; NAN where unknown */
     double last_range_m;                /* of the last sound */
     enum range_from last_from;
     double peak_db;                 /* the highest */
-    double energy[LEVEL_MAX_BANDS]; /* uPa2 s, of all */
+    double energy[LEVEL_MAX_BANDS]; /* uPa2 s, of all; of seconds uPa2 */
     struct tally_counts counts;
     bool changed; /* since it was last said */
 };
@@ -30,6 +30,8 @@ void tally_channel_begin_job(struct tally_channel *channel);
 bool tally_channel_counts(struct tally_channel *channel, const struct impulse *impulse);
 /* Takes one that does, heard at a range (NAN: unknown). */
 void tally_channel_push(struct tally_channel *channel, const struct impulse *impulse, double range_m);
+/* Takes a second of continuous sound: SPL where an impulse has SEL. Uncalibrated ones are only counted. */
+void tally_channel_push_level(struct tally_channel *channel, const struct level *level, double range_m);
 /* Whether there is anything to say of it. */
 bool tally_channel_heard(const struct tally_channel *channel);
 /* Adds an impulse's decidecades, uPa2 s. */

@@ -15,6 +15,7 @@
 #include "rule/tally_fit.h"
 #include "rule/tally_limits.h"
 #include "rule/tally_quieting.h"
+#include "rule/tally_sounding.h"
 #include "rule/tally_together.h"
 #include "rule/tally_warning.h"
 
@@ -61,6 +62,7 @@ struct tally {
     char job[IMPULSE_JOB_SIZE];
     int64_t job_ns; /* since when it is open, or none is */
     bool quieting_on;
+    struct tally_sounding sounding;
     bool silent;     /* being rebuilt */
     uint64_t n_kept; /* impulses, of all streams */
     uint32_t run;

@@ -5,7 +5,7 @@
 
 static struct source_law set_law(const struct tally_setup *setup)
 {
-    return (struct source_law){.metric = METRIC_SEL_SINGLE,
+    return (struct source_law){.metric = setup->sound == SOUND_CONTINUOUS ? METRIC_SPL : METRIC_SEL_SINGLE,
                                .low_hz = 1,
                                .high_hz = 1e6,
                                .loss = {.law = LOSS_POWER, .n_db = setup->loss_n_db},

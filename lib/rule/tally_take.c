@@ -1,4 +1,5 @@
 /* What the tally sums, and what counts as said; see tally_inner.h. */
+#include "base/time.h"
 #include "rule/tally_inner.h"
 #include <math.h>
 #include <stdio.h>
@@ -54,17 +55,31 @@ bool tally_sum(struct tally *tally, uint32_t stream, const struct impulse *impul
     return counts;
 }
 
+/* The one channel of a stream whose seconds are summed. */
+static bool is_reference(const struct tally *tally, uint32_t stream, uint32_t channel)
+{
+    uint32_t reference = tally->setup.reference[stream - 1], first = tally->sums[stream - 1].channel;
+    return reference ? channel == reference : !first || channel == first;
+}
+
 void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level)
 {
     struct sums *sums = &tally->sums[stream - 1];
     struct exposure_sound sound;
-    if (tally->setup.sound != SOUND_CONTINUOUS || level->relative ||
-        (sums->channel && sums->channel != level->channel))
-        return;
-    exposure_of_level(
-        level, tally_set_range(tally, stream, level->channel, level->range_m, level->range_from), &sound);
     /* By its own time: seconds that come in again from a ledger come a minute late. */
-    sound.before_job = level->start_ns < tally->job_ns;
+    const bool before_job = level->start_ns < tally->job_ns;
+    const bool reference = is_reference(tally, stream, level->channel);
+    if (tally->setup.sound != SOUND_CONTINUOUS || level->channel < 1 || level->channel > FLOW_MAX_CHANNELS ||
+        !(reference || tally->setup.role[stream - 1][level->channel - 1] != ROLE_LISTEN) ||
+        !tally_sounding_in(&tally->sounding, level->start_ns, level->start_ns + time_from_s(level->seconds)))
+        return;
+    double range_m = tally_set_range(tally, stream, level->channel, level->range_m, level->range_from);
+    if (!before_job)
+        tally_channel_push_level(&sums->channels[level->channel - 1], level, range_m);
+    if (!reference || level->relative)
+        return;
+    exposure_of_level(level, range_m, &sound);
+    sound.before_job = before_job;
     if (exposure_push(sums->exposure, &sound) != STATUS_OK)
         return;
     sums->channel = level->channel;

@@ -2,6 +2,7 @@
 """A second hammer that the settings name, through the whole chain (`hushwatch scan`); and a continuous source, which is
 judged by the criteria of continuous sound. Scenes, permit of seconds and people are invented."""
 import os
+import statistics
 import sys
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
@@ -28,14 +29,14 @@ OTHER = """others = ( { name = "hammer B"; place_m = [ %s, 0.0, 0.0 ]; sound = "
     at_m = 750.0; low_hz = 63.0; high_hz = 630.0; } );"""
 
 
-def hear(place, name, sources, sound, more="", criteria="nmfs-2024"):
+def hear(place, name, sources, sound, more="", criteria="nmfs-2024", form="pile"):
     with open(place + "/scene.cfg", "w") as file:
         file.write(SCENE % sources)
     channel = '{ role = "measure"; sensitivity_db = -170.0; full_scale_v = 10.0; place_m = [ 0.0, 750.0, 10.0 ]; }'
-    source = 'source = { form = "pile"; sound = "%s"; criteria = ["%s/config/criteria/%s.cfg"]; %s };'
+    source = 'source = { form = "%s"; sound = "%s"; criteria = ["%s/config/criteria/%s.cfg"]; %s };'
     config = settings(place + "/site.cfg", permit="tests/system/seconds-permit.cfg", channels=channel,
                       stream='input = "scene"; path = "scene.cfg"; pace = "fast";',
-                      more=source % (sound, ROOT, criteria, more))
+                      more=source % (form, sound, ROOT, criteria, more))
     ledger = "%s/%s.ledger" % (place, name)
     done = scan(config, ledger, "--start", "2026-03-01T12:00:00Z")
     check("%s: scanned" % name, done.returncode == 0, done.stderr)
@@ -66,6 +67,18 @@ with folder() as place_of_test:
     figure("continuous: %s" % rows)
     check("a continuous source is judged by the criteria of continuous sound alone", list(rows) == ["behaviour, continuous"], rows)
     row = rows.get("behaviour, continuous")
+    # said to sound from 9.5 s on: seconds 9 to 89
+    check("only seconds in which it was said to sound count", row and row[7] == 81, row)
+    numbers = ask(steady, "SELECT n_seconds, n_impulses, spl_db, sel_db, at_750_m_db, back_db, reason FROM source ORDER BY seq DESC LIMIT 1")
+    heard = statistics.median(x[0] for x in ask(steady, "SELECT spl_db FROM level WHERE start_s >= 9"))
+    check("a continuous source has its numbers of SPL", numbers and numbers[0][:2] == (81, 0) and abs(numbers[0][2] - heard) < 0.02 and
+          numbers[0][3] is None and abs(numbers[0][4] - heard) < 0.05, (numbers, heard))
+    check("a pile under a vibro hammer has no level of a point source", numbers[0][5] is None and "line source" in numbers[0][6], numbers)
+    point = hear(place_of_test, "point", SHIP, "continuous", criteria="behaviour-us", form="point", more="loss_n_db = 20.0;")
+    numbers = ask(point, "SELECT back_db, back_low_db, back_high_db, reason FROM source ORDER BY seq DESC LIMIT 1")[0]
+    figure("source level worked back from 750 m by 20 lg r: %s dB (%s to %s), set 190" % numbers[:3])
+    # the scene spreads by 20 lg r from a point of 190 dB re 1 uPa m, over sea noise 25 dB below
+    check("a point source has its source level", abs(numbers[0] - 190) < 0.1 and numbers[1] < 190 < numbers[2], numbers)
     loudest = ask(steady, "SELECT max(spl_db) FROM level")[0][0]
     check("its SPL is the loudest second's", row and abs(row[1] - loudest) < 0.02, (row, loudest))
     # N lg r without absorption to speak of: R = 750 10^((L - T) / 15)

@@ -97,6 +97,15 @@ static void note(struct sea *sea, int64_t at_ns, enum note_kind kind, const char
     happen(sea, event);
 }
 
+static void say_source(struct sea *sea, int64_t at_ns, const char *state)
+{
+    struct event event = {.kind = EVENT_NOTE, .known_ns = at_ns};
+    note_reset(&event.as.note, NOTE_SOURCE);
+    event.as.note.known_ns = event.as.note.occurred_ns = at_ns;
+    snprintf(event.as.note.source_state, sizeof event.as.note.source_state, "%s", state);
+    happen(sea, event);
+}
+
 /* A second that begins at a time, and becomes known 0.2 s after its end. */
 static void second(struct sea *sea, int64_t start_ns, double spl_db, struct random *random)
 {
@@ -264,8 +273,9 @@ static double loudest_db(const struct said *said)
 }
 
 /* Ten hours of drilling with blows heard too. The job opens 17.4 s into a minute, and the second before it is
- * the loudest: it is no second of the job. A kill 41 s into the last minute loses that minute and nothing
- * else. */
+ * as loud as the second before somebody says that the source sounds and the one after it has stopped: neither
+ * is a second of the source in the job. It sounds from 0.5 s into second 399 on but for seconds n/2 + 7 to
+ * n/2 + 23. A kill 41 s into the last minute loses that minute and nothing else. */
 static void continuous_sums_are_those_of_the_seconds_in_the_ledger(void **state)
 {
     (void)state;
@@ -281,9 +291,14 @@ static void continuous_sums_are_those_of_the_seconds_in_the_ledger(void **state)
             sea->tally = lost; /* these seconds reach no entry */
         if (i == 318)
             note(sea, INT64_C(317400000000), NOTE_JOB, "hole 1", "open");
+        if (i == 399 || i == n / 2 + 24)
+            say_source(sea, (int64_t)i * TIME_NS_PER_S + TIME_NS_PER_S / 2, "vibro");
+        if (i == n / 2 + 6)
+            say_source(sea, (int64_t)i * TIME_NS_PER_S + TIME_NS_PER_S / 2, "stopped");
         if (i % 5 == 2 && i < n)
             blow(sea, (int64_t)i * TIME_NS_PER_S - 3 * TIME_NS_PER_S / 5, 150);
-        second(sea, (int64_t)i * TIME_NS_PER_S, i == 317 ? 150 : 120 + 2 * random_normal(&random), &random);
+        second(sea, (int64_t)i * TIME_NS_PER_S,
+               i == 317 || i == 398 || i == n / 2 + 7 ? 150 : 120 + 2 * random_normal(&random), &random);
     }
     end(sea);
     double seconds;
@@ -292,6 +307,8 @@ static void continuous_sums_are_those_of_the_seconds_in_the_ledger(void **state)
     struct said was = say(at_sea, end_ns), is = say(rebuilt, end_ns);
     assert_same(&was, &is);
     assert_true(loudest_db(&is) < 140);
+    assert_int_equal(is.source.n_seconds, n - 399 - 17);
+    assert_true(same(was.source.spl_db, is.source.spl_db) && same(was.source.peak_db, is.source.peak_db));
     assert_int_equal(is.source.n_impulses, 0); /* a blow is in the levels of its seconds already */
     printf("# figure a ledger of %.0f h of continuous sound is restored in %.2f s\n", n / 3600.0, seconds);
     assert_true(seconds < 20);
