@@ -120,8 +120,43 @@ static void take_unheard(struct hearing_view *hearing, uint32_t stream, const st
         hearing->streams[stream - 1].unheard_s += time_to_s(unheard->end_ns - unheard->start_ns);
 }
 
+void hearing_advance_sound(struct hearing_sound *sound, int64_t watch_ns)
+{
+    int64_t step = watch_ns / (BOARD_SOUND_STEP_S * TIME_NS_PER_S);
+    for (int64_t n = 0; sound->step < step; n++) {
+        sound->step = n < BOARD_SOUND_STEPS ? sound->step + 1 : step;
+        sound->counts[sound->step % BOARD_SOUND_STEPS] = 0;
+    }
+}
+
+static void count_sound(struct hearing_view *hearing, const struct call *call)
+{
+    uint32_t i = 0;
+    while (i < hearing->n_sounds && strcmp(hearing->sounds[i].class_name, call->class_name) != 0)
+        i++;
+    if (i == BOARD_MAX_SOUNDS)
+        return;
+    struct hearing_sound *sound = &hearing->sounds[i];
+    int64_t step = call->end_ns / (BOARD_SOUND_STEP_S * TIME_NS_PER_S);
+    if (i == hearing->n_sounds) {
+        hearing->n_sounds++;
+        *sound = (struct hearing_sound){.step = step};
+        memcpy(sound->class_name, call->class_name, sizeof sound->class_name);
+    }
+    hearing_advance_sound(sound, call->end_ns);
+    if (step > sound->step - BOARD_SOUND_STEPS)
+        sound->counts[step % BOARD_SOUND_STEPS] += call->n_sounds;
+    sound->last_ns = call->end_ns > sound->last_ns ? call->end_ns : sound->last_ns;
+    sound->n += call->n_sounds;
+    sound->n_against += call->n_against;
+}
+
 static void take_call(struct hearing_view *hearing, const struct outcome *outcome, const struct event *event)
 {
+    if (event->as.call.n_sounds > 0) {
+        count_sound(hearing, &event->as.call);
+        return;
+    }
     hearing->n_calls =
         push_front(hearing->calls, hearing->n_calls, BOARD_MAX_CALLS, sizeof hearing->calls[0]);
     hearing->calls[0] = (struct hearing_call){.stream = event->stream, .call = event->as.call};

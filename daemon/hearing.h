@@ -9,6 +9,9 @@
 /* Remembers one outcome of the watch; newest first, oldest dropped. */
 void hearing_take(struct hearing_view *hearing, const struct outcome *outcome);
 
+/* Empties the steps that begin up to a watch time. */
+void hearing_advance_sound(struct hearing_sound *sound, int64_t watch_ns);
+
 /* Remembers an advice that waits to be committed, and forgets it once it has been. */
 void hearing_add_unrecorded(struct hearing_view *hearing, const char *id);
 void hearing_set_recorded(struct hearing_view *hearing, const char *id);

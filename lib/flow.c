@@ -62,7 +62,8 @@ static const char *const whose_words[] = {
 
 static const char *const from_words[] = {
     [BEARING_NONE] = "", [BEARING_TRUE] = "true", [BEARING_AHEAD] = "ahead"};
-static const char *const form_words[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train"};
+static const char *const form_words[] = {
+    [CALL_TONE] = "tone", [CALL_TRAIN] = "train", [CALL_NOISE] = "noise"};
 
 static const char *const event_kinds[] = {
     [EVENT_RUN] = "run",           [EVENT_UNHEARD] = "unheard", [EVENT_LEVEL] = "level",

@@ -143,7 +143,9 @@ struct contact_outcome {
     struct whereabouts whereabouts;
     double bearing_deg, mirror_deg; /* NAN where none */
     enum bearing_from bearing_from;
-    double p_inside; /* of the strongest zone that counts; NAN when unknown */
+    double p_inside;       /* of the strongest zone that counts; NAN when unknown */
+    uint32_t n_taken_back; /* calls that proved to be sounds of no animal; n_calls is without them */
+    double against;        /* log-odds that such sounds took from it so far */
 };
 
 struct phase_outcome {

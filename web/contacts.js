@@ -60,6 +60,7 @@ function update(card, contact) {
   const bearing = contact.bearing_deg === null ? "" : ", bearing " + contact.bearing_deg.toFixed(0) + "° " + (contact.bearing_from || "") + (contact.mirror_deg === null ? "" : " or " + contact.mirror_deg.toFixed(0) + "°");
   setText(part("where"), (known ? `About ${metres(contact.distance_p50_m)} (${metres(contact.distance_p05_m)} to ${metres(contact.distance_p95_m)})` : "Range unknown") + inside + bearing);
   setText(part("evidence"), `${contact.n_calls} call${contact.n_calls === 1 ? "" : "s"}${contact.seen ? ", seen" : ", not seen"}; last ${span(now - contact.last_s)} ago, first ${utc(contact.first_s)} UTC; evidence ${contact.evidence.toFixed(1)}` +
+    (contact.n_taken_back ? `; ${contact.n_taken_back} more ${contact.n_taken_back === 1 ? "was" : "were"} a recognised sound of something else, which took ${contact.against.toFixed(1)} back` : "") +
     (contact.clears_at_s !== null && contact.clears_at_s > now ? `; clears in ${span(contact.clears_at_s - now)} at ${utc(contact.clears_at_s, false)} UTC` : ""));
   part("actions").hidden = !live;
 }

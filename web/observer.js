@@ -120,6 +120,17 @@ function drawHearing(state) {
     setText(node, !gap ? "None." : `${utc(gap.start_s)} UTC, ${(gap.end_s - gap.start_s).toFixed(1)} s: ${gap.cause}, ${gap.channel ? "channel " + gap.stream + "." + gap.channel : "all of stream " + gap.stream}`));
 }
 
+/** Recognised sounds that are no animal's, counted; the last day's count is said where it tells more than the hour's. */
+function drawOtherSounds(state) {
+  const heard = (state.sounds || []).slice().sort((a, b) => b.last_hour - a.last_hour || b.last_s - a.last_s);
+  keyed($("other_sounds"), heard.length ? heard : [null], (sound) => sound && sound.class, () => el("li", {}, el("b"), el("span")), (node, sound) => {
+    setText(node.firstChild, sound ? sound.class : "");
+    if (!sound) return setText(node.lastChild, "Nothing that was recognised.");
+    const taken = sound.calls_taken_back, day = sound.last_day > sound.last_hour ? `, ${sound.last_day.toLocaleString("en")} in the last day` : "";
+    setText(node.lastChild, `: ${sound.last_hour.toLocaleString("en")} in the last hour${day}; last at ${utc(sound.last_s)} UTC` + (taken ? `; spoke against ${taken} call${taken === 1 ? "" : "s"}` : "") + ".");
+  });
+}
+
 /** Why sounds were not calls or impulses: of each class what was found, what was rejected, or that the rate cannot carry it. */
 function drawExplanation(state) {
   if (!$("explain").open) return;
@@ -172,6 +183,7 @@ function draw() {
   drawPeople(state);
   drawSource(state);
   drawHearing(state);
+  drawOtherSounds(state);
   drawExplanation(state);
   sounds(state, advice, withdrawn, found);
 }

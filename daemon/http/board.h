@@ -26,6 +26,9 @@
 #define BOARD_CURVE_STEPS 360 /* an hour */
 #define BOARD_CURVE_STEP_S 10
 #define BOARD_MAX_UNRECORDED 8
+#define BOARD_MAX_SOUNDS 32    /* classes that are no animal's */
+#define BOARD_SOUND_STEP_S 600 /* an hour is the step at hand and the five before it */
+#define BOARD_SOUND_STEPS 144  /* a day */
 #define BOARD_MAX_LEVELS (SITE_MAX_STREAMS * FLOW_MAX_CHANNELS)
 #define BOARD_LINE_SIZE 192
 
@@ -88,6 +91,15 @@ struct hearing_unheard {
     struct unheard unheard;
 };
 
+/* Sounds of a class that is no animal's, counted in steps of the last day. */
+struct hearing_sound {
+    char class_name[CALL_CLASS_SIZE];
+    int64_t last_ns;                    /* end of the newest */
+    int64_t step;                       /* number of the step at hand */
+    uint32_t counts[BOARD_SOUND_STEPS]; /* by step modulo their number */
+    uint64_t n, n_against;              /* of this run: sounds; calls that they took back */
+};
+
 /* What the daemon knows beside the watch. Lists are newest first. About 200 kB: not for the stack. */
 struct hearing_view {
     int64_t unix_at_zero_ns; /* UTC of watch time 0 by the clock map in force */
@@ -99,6 +111,8 @@ struct hearing_view {
     struct hearing_call calls[BOARD_MAX_CALLS];
     uint32_t n_impulses;
     struct hearing_impulse impulses[BOARD_MAX_IMPULSES];
+    uint32_t n_sounds;
+    struct hearing_sound sounds[BOARD_MAX_SOUNDS];
     uint32_t n_unheard;
     struct hearing_unheard unheard[BOARD_MAX_UNHEARD];
     uint32_t n_curve; /* the loudest of our impulses in each step of the last hour, oldest first */

@@ -135,6 +135,36 @@ static void one_call(struct text *text, const struct hearing_call *heard)
     text_append(text, "}");
 }
 
+/* Sounds in the newest n steps; what is older than the view's time is left out. */
+static double sounds_in(const struct hearing_sound *sound, int64_t now_step, int64_t n)
+{
+    double sum = 0;
+    for (int64_t step = now_step - n + 1; step <= now_step; step++)
+        if (step >= 0 && step <= sound->step && step > sound->step - BOARD_SOUND_STEPS)
+            sum += sound->counts[step % BOARD_SOUND_STEPS];
+    return sum;
+}
+
+void board_json_sounds(struct text *text, const struct hearing_view *hearing, int64_t watch_ns)
+{
+    int64_t now_step = watch_ns / (BOARD_SOUND_STEP_S * TIME_NS_PER_S);
+    json_name(text, "sounds");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < hearing->n_sounds; i++) {
+        const struct hearing_sound *sound = &hearing->sounds[i];
+        json_next(text);
+        text_append(text, "{");
+        json_text(text, "class", sound->class_name);
+        json_number(text, "last_hour", sounds_in(sound, now_step, 3600 / BOARD_SOUND_STEP_S), 0);
+        json_number(text, "last_day", sounds_in(sound, now_step, BOARD_SOUND_STEPS), 0);
+        json_number(text, "run", (double)sound->n, 0);
+        json_number(text, "calls_taken_back", (double)sound->n_against, 0);
+        json_time(text, "last_s", sound->last_ns);
+        text_append(text, "}");
+    }
+    text_append(text, "]");
+}
+
 static void one_impulse(struct text *text, const struct hearing_impulse *heard)
 {
     const struct impulse *impulse = &heard->impulse;

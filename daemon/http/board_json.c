@@ -229,6 +229,8 @@ static void one_contact(struct text *text, const struct watch_contact *shown)
     json_number(text, "mirror_deg", contact->mirror_deg, 1);
     json_text(text, "bearing_from", bearing_from_text(contact->bearing_from));
     json_number(text, "evidence", shown->evidence, 2);
+    json_number(text, "n_taken_back", contact->n_taken_back, 0);
+    json_number(text, "against", contact->against, 2);
     json_time(text, "first_s", shown->first_ns);
     json_time(text, "last_s", shown->last_ns);
     json_time(text, "clears_at_s", shown->clears_at_ns);

@@ -22,6 +22,8 @@ void board_json_urgent(struct text *text, const struct watch_view *watch, const 
 void board_json_watch(struct text *text, const struct watch_view *watch);
 /* "streams", "levels", "calls", "impulses", "unheard", "recording", "faults". */
 void board_json_hearing(struct text *text, const struct hearing_view *hearing);
+/* "sounds": what else was heard, counted up to a watch time. */
+void board_json_sounds(struct text *text, const struct hearing_view *hearing, int64_t watch_ns);
 
 /* "curve", "exposures", "sources": what the source's sound adds up to. */
 void board_json_sums(struct text *text, const struct hearing_view *hearing);

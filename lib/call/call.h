@@ -1,4 +1,7 @@
-/* A call: one vocalisation, a tone (traced contour) or a train (pulses tied by rhythm and shape). */
+/* A call: one vocalisation, a tone (traced contour) or a train (pulses tied by rhythm and shape). What is
+ * recognised and is no animal's (a sonar's ping, a ship's line, rain) travels as a call too, with n_sounds
+ * above 0 and group unknown: it is recorded and counted, is part of no contact, and may speak against calls.
+ */
 #ifndef CALL_CALL_H
 #define CALL_CALL_H
 
@@ -6,6 +9,7 @@
 #include <stdint.h>
 
 #define CALL_CLASS_SIZE 32
+#define CALL_MAX_AGAINST 8
 
 /* What a call can tell about who made it; a permit's own groups are predicates over these. */
 enum group {
@@ -23,7 +27,7 @@ enum group {
     GROUP_COUNT
 };
 
-enum call_form { CALL_TONE, CALL_TRAIN };
+enum call_form { CALL_TONE, CALL_TRAIN, CALL_NOISE }; /* noise: of what is no animal's only */
 enum bearing_from { BEARING_NONE, BEARING_TRUE, BEARING_AHEAD };
 
 struct call {
@@ -42,8 +46,12 @@ struct call {
     double bearing_deg; /* NAN where none */
     double mirror_deg;  /* NAN where none */
     enum bearing_from bearing_from;
-    double certainty; /* 0..1: how often a call like this is right */
-    double evidence;  /* log-odds it adds to a contact of its group */
+    double certainty;   /* 0..1: how often a call like this is right */
+    double evidence;    /* log-odds it adds to a contact of its group; of what is no animal's 0 or less: the
+                           log-odds that it takes from each call that it covers, at most what that call has */
+    uint32_t n_sounds;  /* 0: an animal's call; else how many sounds of a class that is no animal's */
+    uint32_t n_against; /* earlier calls of the same run and stream that it covers and speaks against ... */
+    uint64_t against[CALL_MAX_AGAINST]; /* ... by their counters */
 };
 
 /* "baleen whale", "delphinid" ...; never NULL. */

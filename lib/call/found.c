@@ -20,6 +20,7 @@ const char *rejection_text(enum rejection rejection)
         [REJECT_TOO_HIGH] = "too high",
         [REJECT_NOT_SUDDEN] = "not sudden",
         [REJECT_LIKE_A_CALL] = "like a call",
+        [REJECT_NOT_AN_ANIMAL] = "covered by what is no animal",
     };
     return (unsigned)rejection < REJECT_COUNT ? names[rejection] : "unknown";
 }

@@ -39,6 +39,7 @@ enum rejection {
     REJECT_TOO_HIGH,
     REJECT_NOT_SUDDEN,
     REJECT_LIKE_A_CALL,
+    REJECT_NOT_AN_ANIMAL, /* covered by a recognised sound of a machine, of the job or of the sea */
     REJECT_COUNT
 };
 

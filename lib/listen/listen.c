@@ -5,6 +5,7 @@
  * giving. */
 #include "listen/listen.h"
 #include "base/units.h"
+#include "listen/covers.h"
 #include "listen/ear.h"
 #include "listen/joiner.h"
 #include "listen/measuring.h"
@@ -22,13 +23,15 @@ struct listen {
     uint64_t next_frame, block_first, block_end;
     struct ear ears[FLOW_MAX_CHANNELS];
     struct strips *strips;
-    uint32_t strip_channel;                   /* the first that listens; 0: none */
-    struct measuring measuring;               /* whose impulses are given */
-    uint32_t gate_channel;                    /* whose impulses mask what the stream hears; 0: none */
-    uint64_t n_hidden[CATALOGUE_MAX_CLASSES]; /* calls that the own source covered */
+    uint32_t strip_channel;                    /* the first that listens; 0: none */
+    struct measuring measuring;                /* whose impulses are given */
+    uint32_t gate_channel;                     /* whose impulses mask what the stream hears; 0: none */
+    uint64_t n_hidden[CATALOGUE_MAX_CLASSES];  /* calls that the own source covered */
+    uint64_t n_covered[CATALOGUE_MAX_CLASSES]; /* calls that a recognised sound covered */
     uint64_t n_found[CATALOGUE_MAX_CLASSES];
     uint64_t n_impulses;
     struct joiner joiner;
+    struct covers covers;
     uint64_t counters[EVENT_NOTE + 1];
     const struct event_sink *sink; /* of the push in progress */
     uint32_t n_pending;
@@ -70,7 +73,8 @@ static void give_pending(struct listen *listen)
     }
     for (uint32_t i = 0; i < listen->n_pending; i++) {
         struct event *event = &listen->pending[i];
-        event->counter = ++listen->counters[event->kind];
+        if (event->kind != EVENT_CALL) /* sounds name calls: they have theirs already */
+            event->counter = ++listen->counters[event->kind];
         listen->sink->take(listen->sink->context, event);
     }
     listen->n_pending = 0;
@@ -87,6 +91,8 @@ static struct event *add_event(struct listen *listen, enum event_kind kind, uint
     event->stream = listen->setup.stream;
     event->run = listen->setup.run;
     event->known_ns = known_ns(listen, known_frame);
+    if (kind == EVENT_CALL) /* added in the order in which they are given */
+        event->counter = ++listen->counters[kind];
     return event;
 }
 
@@ -206,28 +212,22 @@ static void take_call(void *context, uint32_t channel, const struct found_call *
     joiner_take(&listen->joiner, channel, found);
 }
 
-static void take_joined(void *context, const struct joined_call *joined)
+static struct event *add_call(struct listen *listen, const struct joined_call *joined)
 {
-    struct listen *listen = context;
     const struct found_call *found = &joined->found;
     const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
-    if (class->animal && is_hidden(listen, found))
-        return;
-    listen->n_found[found->class_index]++;
-    if (!class->animal)
-        return;
     struct event *event = add_event(listen, EVENT_CALL, found->known_frame);
     struct call *call = &event->as.call;
     *call = (struct call){
         .channel = joined->channel,
-        .group = class->group,
+        .group = class->animal ? class->group : GROUP_UNKNOWN,
         .form = class->form,
         .start_ns = time_at(listen, found->start_frame),
         .end_ns = time_at(listen, found->end_frame),
         .low_hz = found->low_hz,
         .high_hz = found->high_hz,
         .n_pulses = found->n_pulses,
-        .interval_s = class->form == CALL_TRAIN ? found->interval_frames / listen->setup.rate_hz : NAN,
+        .interval_s = found->interval_frames > 0 ? found->interval_frames / listen->setup.rate_hz : NAN,
         .snr_db = found->snr_db,
         .level_db = units_spl_db(found->mean_square_pa2),
         .relative = listen->ears[joined->channel - 1].relative,
@@ -236,6 +236,50 @@ static void take_joined(void *context, const struct joined_call *joined)
         .certainty = class->certainty,
         .evidence = class->evidence};
     memcpy(call->class_name, class->name, sizeof call->class_name);
+    return event;
+}
+
+/* Sounds that were gathered; what they speak against was said when each became known. */
+static void take_gathered(void *context, const struct joined_call *joined, uint32_t n_sounds)
+{
+    struct listen *listen = context;
+    struct joined_call sound = *joined;
+    sound.found.known_frame = listen->block_end - 1;
+    add_call(listen, &sound)->as.call.n_sounds = n_sounds;
+}
+
+static void take_sound_of_none(struct listen *listen, const struct joined_call *joined)
+{
+    uint64_t against[CALL_MAX_AGAINST];
+    uint32_t n_against = covers_take_sound(&listen->covers, joined, against);
+    if (!covers_gives_now(&listen->covers, joined, n_against > 0))
+        return;
+    struct call *call = &add_call(listen, joined)->as.call;
+    call->n_sounds = 1;
+    call->n_against = n_against;
+    memcpy(call->against, against, n_against * sizeof against[0]);
+}
+
+static void take_joined(void *context, const struct joined_call *joined)
+{
+    struct listen *listen = context;
+    const struct found_call *found = &joined->found;
+    bool animal = listen->setup.catalogue->classes[found->class_index].animal;
+    if (animal && is_hidden(listen, found))
+        return;
+    double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
+    if (animal && evidence <= 0 && listen->setup.catalogue->classes[found->class_index].evidence > 0) {
+        listen->n_covered[found->class_index]++;
+        return;
+    }
+    listen->n_found[found->class_index]++;
+    if (!animal) {
+        take_sound_of_none(listen, joined);
+        return;
+    }
+    struct event *event = add_call(listen, joined);
+    event->as.call.evidence = evidence;
+    covers_keep_call(&listen->covers, found, event->counter);
 }
 
 /* The first channel that listens masks the stream: a blow reaches it at another time than a far measuring
@@ -271,6 +315,7 @@ static enum status create_ears(struct listen *listen)
             return status;
         listening += listen->ears[i].listens;
     }
+    covers_reset(&listen->covers, setup->catalogue->classes, setup->catalogue->n_classes, setup->rate_hz);
     joiner_reset(&listen->joiner, listening > 1 ? (uint64_t)(HOLD_S * setup->rate_hz) : 0);
     return STATUS_OK;
 }
@@ -343,6 +388,7 @@ enum status listen_push(struct listen *listen, const struct block *block, const 
         block->first_frame != listen->next_frame + block->lost_before)
         return STATUS_BAD_ARGUMENT;
     const struct joined_sink joined = {take_joined, listen};
+    const struct gathered_sink gathered = {take_gathered, listen};
     listen->sink = sink;
     listen->block_first = block->n_frames ? block->first_frame : block->first_frame - 1;
     listen->block_end = block->first_frame + block->n_frames;
@@ -353,6 +399,7 @@ enum status listen_push(struct listen *listen, const struct block *block, const 
         compare_channels(listen);
     }
     joiner_give(&listen->joiner, listen->block_end, &joined);
+    covers_give(&listen->covers, listen->block_end, false, &gathered);
     listen->next_frame = listen->block_end;
     give_pending(listen);
     return STATUS_OK;
@@ -361,6 +408,7 @@ enum status listen_push(struct listen *listen, const struct block *block, const 
 enum status listen_finish(struct listen *listen, const struct event_sink *sink)
 {
     const struct joined_sink joined = {take_joined, listen};
+    const struct gathered_sink gathered = {take_gathered, listen};
     if (listen->next_frame == 0)
         return STATUS_OK;
     listen->sink = sink;
@@ -369,6 +417,7 @@ enum status listen_finish(struct listen *listen, const struct event_sink *sink)
     for (uint32_t i = 0; i < listen->setup.n_channels; i++)
         ear_finish(&listen->ears[i]);
     joiner_give(&listen->joiner, UINT64_MAX, &joined);
+    covers_give(&listen->covers, listen->block_end, true, &gathered);
     give_pending(listen);
     return STATUS_OK;
 }
@@ -397,8 +446,10 @@ void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_M
             for (uint32_t r = 0; r < REJECT_COUNT; r++)
                 out[c][r] += one[c][r];
     }
-    for (uint32_t c = 0; c < CATALOGUE_MAX_CLASSES; c++)
+    for (uint32_t c = 0; c < CATALOGUE_MAX_CLASSES; c++) {
         out[c][REJECT_OWN_SOURCE] += listen->n_hidden[c];
+        out[c][REJECT_NOT_AN_ANIMAL] += listen->n_covered[c];
+    }
 }
 
 static bool can_hear(const struct listen *listen, uint32_t class_index)

@@ -61,11 +61,26 @@ static enum status impulse_body(const struct event *event, struct text *out)
     return body_end(&body);
 }
 
+/* Ids of the calls that a sound speaks against. */
+static void body_ids(struct body *body, const char *key, const struct event *event, const struct call *call)
+{
+    body_key(body, key);
+    text_append(body->out, "[");
+    for (uint32_t i = 0; i < call->n_against; i++) {
+        char id[FLOW_ID_SIZE];
+        flow_id(event->run, event->stream, "call", call->against[i], id);
+        text_format(body->out, "%s\"%s\"", i ? "," : "", id);
+    }
+    text_append(body->out, "]");
+}
+
 static enum status call_body(const struct event *event, struct text *out)
 {
     const struct call *call = &event->as.call;
     struct body body;
     body_begin(&body, out);
+    if (call->n_sounds > 0)
+        body_ids(&body, "against", event, call);
     body_number(&body, "bearing_deg", call->bearing_deg, ROUND_DECIMALS_DEG);
     body_text_or_null(&body, "bearing_from", bearing_from_text(call->bearing_from));
     body_number(&body, "certainty", call->certainty, ROUND_DECIMALS_PROBABILITY);
@@ -82,6 +97,8 @@ static enum status call_body(const struct event *event, struct text *out)
     body_number(&body, "low_hz", call->low_hz, ROUND_DECIMALS_HZ);
     body_number(&body, "mirror_deg", call->mirror_deg, ROUND_DECIMALS_DEG);
     body_integer(&body, "n_pulses", call->n_pulses);
+    if (call->n_sounds > 0)
+        body_integer(&body, "n_sounds", call->n_sounds);
     body_bool(&body, "relative", call->relative);
     body_number(&body, "snr_db", call->snr_db, ROUND_DECIMALS_DB);
     body_time(&body, "start_s", call->start_ns);
@@ -172,6 +189,7 @@ static enum status contact_body(const struct outcome *outcome, struct text *out)
     const struct whereabouts *where = &contact->whereabouts;
     struct body body;
     body_begin(&body, out);
+    body_number(&body, "against", contact->against, ROUND_DECIMALS_EVIDENCE);
     body_number(&body, "bearing_deg", contact->bearing_deg, ROUND_DECIMALS_DEG);
     body_text_or_null(&body, "bearing_from", bearing_from_text(contact->bearing_from));
     body_integer(&body, "contact", contact->contact);
@@ -183,6 +201,7 @@ static enum status contact_body(const struct outcome *outcome, struct text *out)
     body_id(&body, outcome->run, outcome->stream, "contact", outcome->counter);
     body_number(&body, "mirror_deg", contact->mirror_deg, ROUND_DECIMALS_DEG);
     body_integer(&body, "n_calls", contact->n_calls);
+    body_integer(&body, "n_taken_back", contact->n_taken_back);
     body_number(&body, "p_inside", contact->p_inside, ROUND_DECIMALS_PROBABILITY);
     body_text(&body, "state", contact_state_text(contact->state));
     return body_end(&body);

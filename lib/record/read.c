@@ -206,12 +206,77 @@ static void read_impulse(struct reading *reading, struct impulse *impulse)
     impulse->range_from = (enum range_from)read_word(reading, "range_from", RANGE_FROM_COUNT, range_word);
 }
 
+/* Decimal digits up to `end`, at least one. */
+static bool read_digits(const char **text, char end, uint64_t max, uint64_t *out)
+{
+    if (**text < '0' || **text > '9')
+        return false;
+    char *stop;
+    errno = 0;
+    unsigned long long value = strtoull(*text, &stop, 10);
+    if (errno || *stop != end || value > max)
+        return false;
+    *text = stop + (end != '\0');
+    *out = value;
+    return true;
+}
+
+/* "run.stream.kind.counter" of that kind. */
+static bool read_id(const char *id, const char *kind, uint32_t *out_run, uint32_t *out_stream,
+                    uint64_t *out_counter)
+{
+    const char *at = id;
+    uint64_t run = 0, stream = 0;
+    size_t length = strlen(kind);
+    if (!read_digits(&at, '.', UINT32_MAX, &run) || !read_digits(&at, '.', UINT32_MAX, &stream) ||
+        strncmp(at, kind, length) != 0 || at[length] != '.')
+        return false;
+    at += length + 1;
+    if (!read_digits(&at, '\0', UINT64_MAX, out_counter))
+        return false;
+    *out_run = (uint32_t)run;
+    *out_stream = (uint32_t)stream;
+    return true;
+}
+
+void reading_id(struct reading *reading, const char *kind, uint32_t *out_run, uint32_t *out_stream,
+                uint64_t *out_counter)
+{
+    char id[FLOW_ID_SIZE];
+    reading_text(reading, "id", true, id, sizeof id);
+    if (!read_id(id, kind, out_run, out_stream, out_counter))
+        reading->good = false;
+}
+
+/* The calls that a sound speaks against: ids of the entry's own run and stream. */
+static void read_against(struct reading *reading, struct call *call)
+{
+    json_t *ids = reading_member(reading, "against", false);
+    uint32_t run = 0, stream = 0;
+    uint64_t own = 0;
+    reading_id(reading, "call", &run, &stream, &own);
+    if (!ids)
+        return;
+    if (!json_is_array(ids) || json_array_size(ids) > CALL_MAX_AGAINST || call->n_sounds == 0) {
+        reading->good = false;
+        return;
+    }
+    for (size_t i = 0; i < json_array_size(ids); i++) {
+        uint32_t its_run = 0, its_stream = 0;
+        const char *text = json_string_value(json_array_get(ids, i));
+        if (!text || !read_id(text, "call", &its_run, &its_stream, &call->against[i]) || its_run != run ||
+            its_stream != stream)
+            reading->good = false;
+    }
+    call->n_against = (uint32_t)json_array_size(ids);
+}
+
 static void read_call(struct reading *reading, struct call *call)
 {
     call->channel = reading_count(reading, "channel", true);
     reading_text(reading, "class", true, call->class_name, sizeof call->class_name);
     call->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
-    call->form = (enum call_form)read_word(reading, "form", CALL_TRAIN + 1, form_word);
+    call->form = (enum call_form)read_word(reading, "form", CALL_NOISE + 1, form_word);
     call->start_ns = read_time(reading, "start_s");
     call->end_ns = read_time(reading, "end_s");
     call->low_hz = reading_number(reading, "low_hz", true, NAN);
@@ -226,6 +291,8 @@ static void read_call(struct reading *reading, struct call *call)
     call->bearing_from = (enum bearing_from)read_word(reading, "bearing_from", BEARING_AHEAD + 1, from_word);
     call->certainty = reading_number(reading, "certainty", true, NAN);
     call->evidence = reading_number(reading, "evidence", true, NAN);
+    call->n_sounds = reading_count(reading, "n_sounds", false); /* not in ledgers of formats 1 to 5 */
+    read_against(reading, call);
 }
 
 static void read_note(struct reading *reading, struct note *note)
@@ -271,41 +338,6 @@ static void read_position(struct reading *reading, struct position *position)
     position->accuracy_m = reading_number(reading, "accuracy_m", true, NAN);
     position->occurred_ns = read_time(reading, "occurred_s");
     reading->good = reading->good && position_check(position) == STATUS_OK;
-}
-
-/* Decimal digits up to `end`, at least one. */
-static bool read_digits(const char **text, char end, uint64_t max, uint64_t *out)
-{
-    if (**text < '0' || **text > '9')
-        return false;
-    char *stop;
-    errno = 0;
-    unsigned long long value = strtoull(*text, &stop, 10);
-    if (errno || *stop != end || value > max)
-        return false;
-    *text = stop + (end != '\0');
-    *out = value;
-    return true;
-}
-
-void reading_id(struct reading *reading, const char *kind, uint32_t *out_run, uint32_t *out_stream,
-                uint64_t *out_counter)
-{
-    char id[FLOW_ID_SIZE];
-    reading_text(reading, "id", true, id, sizeof id);
-    const char *at = id;
-    uint64_t run = 0, stream = 0;
-    size_t length = strlen(kind);
-    if (!read_digits(&at, '.', UINT32_MAX, &run) || !read_digits(&at, '.', UINT32_MAX, &stream) ||
-        strncmp(at, kind, length) != 0 || at[length] != '.') {
-        reading->good = false;
-        return;
-    }
-    at += length + 1;
-    if (!read_digits(&at, '\0', UINT64_MAX, out_counter))
-        reading->good = false;
-    *out_run = (uint32_t)run;
-    *out_stream = (uint32_t)stream;
 }
 
 static bool input_kind(const char *kind, enum event_kind *out)

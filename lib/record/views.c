@@ -46,7 +46,7 @@ const struct schema_object views_schema[] = {
         COLUMN("stream") COLUMN("channel") COLUMN("class") COLUMN_GROUP COLUMN("form") COLUMN("start_s")
         COLUMN("end_s") COLUMN("low_hz") COLUMN("high_hz") COLUMN("n_pulses") COLUMN("interval_s")
         COLUMN("snr_db") COLUMN("level_db") COLUMN("relative") COLUMN("bearing_deg") COLUMN("mirror_deg")
-        COLUMN("bearing_from") COLUMN("certainty") COLUMN("evidence")),
+        COLUMN("bearing_from") COLUMN("certainty") COLUMN("evidence") COLUMN("n_sounds") COLUMN("against")),
     VIEW("impulse",
         COLUMN("stream") COLUMN("channel") COLUMN("job") COLUMN("time_s") COLUMN("sel_db") COLUMN("peak_db")
         COLUMN("peak_to_peak_db") COLUMN("rms90_db") COLUMN("t90_s") COLUMN("background_db") COLUMN("whose")
@@ -85,7 +85,8 @@ const struct schema_object views_schema[] = {
     VIEW("contact",
         COLUMN("contact") COLUMN_GROUP COLUMN("grade") COLUMN("state") COLUMN("n_calls")
         COLUMN("distance_p05_m") COLUMN("distance_p50_m") COLUMN("distance_p95_m") COLUMN("bearing_deg")
-        COLUMN("mirror_deg") COLUMN("bearing_from") COLUMN("p_inside")),
+        COLUMN("mirror_deg") COLUMN("bearing_from") COLUMN("p_inside") COLUMN("n_taken_back")
+        COLUMN("against")),
     VIEW("phase", COLUMN("phase") COLUMN("reason") COLUMN("clause") COLUMN("job") COLUMN("causes")),
     VIEW("advice",
         COLUMN("advice") COLUMN("reason") COLUMN("clause") COLUMN("station") COLUMN("until")

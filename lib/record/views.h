@@ -8,7 +8,7 @@
 
 #include <stddef.h>
 
-#define VIEWS_FORMAT 4                  /* PRAGMA user_version: rises when the table or a view changes */
+#define VIEWS_FORMAT 6                  /* PRAGMA user_version: rises when the table or a view changes */
 #define VIEWS_APPLICATION_ID 0x48555348 /* PRAGMA application_id: "HUSH" */
 
 /* The id of an entry as an SQL expression over `body`; the index entry_id is on this very expression. */

@@ -64,6 +64,64 @@ double contact_evidence(const struct contact *contact, int64_t now_ns, double de
     return contact->evidence * exp(-(double)(now_ns - contact->evidence_ns) / 1e9 / decay_s);
 }
 
+void contact_keep_call(struct contact *contact, const struct event *event, int64_t end_ns)
+{
+    if (contact->n_kept == CONTACT_MAX_KEPT) {
+        memmove(contact->kept, contact->kept + 1, sizeof contact->kept[0] * --contact->n_kept);
+        contact->forgot_calls = true;
+    }
+    contact->kept[contact->n_kept++] = (struct contact_call){.run = event->run,
+                                                             .stream = event->stream,
+                                                             .counter = event->counter,
+                                                             .known_ns = event->known_ns,
+                                                             .end_ns = end_ns,
+                                                             .evidence = event->as.call.evidence};
+}
+
+static double faded(double evidence, int64_t since_ns, int64_t now_ns, double decay_s)
+{
+    return evidence * exp(-(double)(now_ns - since_ns) / 1e9 / decay_s);
+}
+
+bool contact_take_back(struct contact *contact, uint32_t run, uint32_t stream, uint64_t counter,
+                       double log_odds, int64_t now_ns, double decay_s)
+{
+    uint32_t i = 0;
+    while (i < contact->n_kept && (contact->kept[i].run != run || contact->kept[i].stream != stream ||
+                                   contact->kept[i].counter != counter))
+        i++;
+    if (i == contact->n_kept)
+        return false;
+    struct contact_call *call = &contact->kept[i];
+    double taken = fmin(log_odds, call->evidence);
+    contact->evidence =
+        contact_evidence(contact, now_ns, decay_s) - faded(taken, call->known_ns, now_ns, decay_s);
+    contact->evidence_ns = now_ns;
+    contact->against += taken;
+    call->evidence -= taken;
+    if (call->evidence > 0)
+        return true;
+    contact->n_kept--;
+    memmove(call, call + 1, sizeof *call * (contact->n_kept - i));
+    contact->n_calls--;
+    contact->n_taken_back++;
+    return true;
+}
+
+double contact_most_evidence(const struct contact *contact, double decay_s)
+{
+    double sum = 0, most = 0;
+    int64_t last_ns = 0;
+    if (contact->forgot_calls)
+        return INFINITY;
+    for (uint32_t i = 0; i < contact->n_kept; i++) {
+        sum = faded(sum, last_ns, contact->kept[i].known_ns, decay_s) + contact->kept[i].evidence;
+        last_ns = contact->kept[i].known_ns;
+        most = fmax(most, sum);
+    }
+    return most;
+}
+
 void contact_add_cause(struct contact *contact, const char *id)
 {
     if (contact->n_causes == CONTACT_MAX_CAUSES)
@@ -245,7 +303,9 @@ struct contact_outcome contact_outcome(const struct contact *contact, const stru
                                     .bearing_deg = contact->bearing_deg,
                                     .mirror_deg = contact->mirror_deg,
                                     .bearing_from = contact->bearing_from,
-                                    .p_inside = round_decimals(p, ROUND_DECIMALS_PROBABILITY)};
+                                    .p_inside = round_decimals(p, ROUND_DECIMALS_PROBABILITY),
+                                    .n_taken_back = contact->n_taken_back,
+                                    .against = contact->against};
 }
 
 /* Words as the observer's page has them: a probability is never 0 or 1. */

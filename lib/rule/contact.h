@@ -10,6 +10,15 @@
 #include <stdint.h>
 
 #define CONTACT_MAX_CAUSES 8
+#define CONTACT_MAX_KEPT 24
+
+/* A call that a contact rests on, so that a sound which becomes known later can take it back. */
+struct contact_call {
+    uint32_t run, stream;
+    uint64_t counter;
+    int64_t known_ns, end_ns;
+    double evidence; /* what is left of it */
+};
 
 struct contact {
     uint32_t number; /* in the ledger, from 1 */
@@ -23,6 +32,11 @@ struct contact {
 
     double evidence; /* log-odds at evidence_ns; they fade from there */
     int64_t evidence_ns;
+    uint32_t n_kept; /* its newest calls, oldest first, without those that were taken back */
+    struct contact_call kept[CONTACT_MAX_KEPT];
+    bool forgot_calls;     /* it rests on older ones too */
+    uint32_t n_taken_back; /* calls that proved to be sounds of no animal */
+    double against;        /* log-odds that such sounds took from it */
 
     struct whereabouts where;
     int64_t where_ns; /* when a person said so */
@@ -68,6 +82,14 @@ struct contact *contacts_near(struct contacts *contacts, enum group group, int64
 
 /* Log-odds at now_ns, faded with time constant decay_s. */
 double contact_evidence(const struct contact *contact, int64_t now_ns, double decay_s);
+/* Remembers a call that has added its evidence; the oldest is forgotten. */
+void contact_keep_call(struct contact *contact, const struct event *event, int64_t end_ns);
+/* Takes at most log_odds of what the call of that id added from the contact's evidence at now_ns; a call of
+ * which nothing is left counts no more. Whether the contact rests on it. */
+bool contact_take_back(struct contact *contact, uint32_t run, uint32_t stream, uint64_t counter,
+                       double log_odds, int64_t now_ns, double decay_s);
+/* The most evidence that it ever had, by the calls that are left; INFINITY when some were forgotten. */
+double contact_most_evidence(const struct contact *contact, double decay_s);
 /* Remembers what the contact rests on; the oldest is forgotten. */
 void contact_add_cause(struct contact *contact, const char *id);
 

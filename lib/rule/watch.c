@@ -160,7 +160,8 @@ enum status watch_push(struct watch *watch, const struct event *event, const str
 {
     if (event->known_ns < watch->now_ns || (unsigned)event->kind > EVENT_POSITION)
         return STATUS_BAD_ARGUMENT;
-    if (event->kind == EVENT_CALL && (unsigned)event->as.call.group >= GROUP_COUNT)
+    if (event->kind == EVENT_CALL &&
+        ((unsigned)event->as.call.group >= GROUP_COUNT || event->as.call.n_against > CALL_MAX_AGAINST))
         return STATUS_BAD_ARGUMENT;
     if (event->kind == EVENT_NOTE && (unsigned)event->as.note.group >= GROUP_COUNT)
         return STATUS_BAD_ARGUMENT;

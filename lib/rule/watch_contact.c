@@ -43,11 +43,16 @@ static void forget_old_distance(const struct watch *watch, struct contact *conta
         contact->where = (struct whereabouts){0};
 }
 
+static enum contact_grade grade_of(const struct watch *watch, double evidence)
+{
+    return evidence >= watch->setup.act_evidence    ? GRADE_ACT
+           : evidence >= watch->setup.look_evidence ? GRADE_LOOK
+                                                    : GRADE_NONE;
+}
+
 static bool raise_grade(const struct watch *watch, struct contact *contact)
 {
-    enum contact_grade grade = contact->evidence >= watch->setup.act_evidence    ? GRADE_ACT
-                               : contact->evidence >= watch->setup.look_evidence ? GRADE_LOOK
-                                                                                 : GRADE_NONE;
+    enum contact_grade grade = grade_of(watch, contact->evidence);
     bool rises = grade > contact->grade;
     if (rises)
         contact->grade = grade;
@@ -58,42 +63,6 @@ static void add_evidence(const struct watch *watch, struct contact *contact, dou
 {
     contact->evidence = contact_evidence(contact, watch->now_ns, watch->setup.evidence_decay_s) + evidence;
     contact->evidence_ns = watch->now_ns;
-}
-
-/* While it calls, a contact's count of calls in the ledger is at most this old. */
-#define CONTACT_BEAT_NS (30 * TIME_NS_PER_S)
-
-void contact_take_call(struct watch *watch, const struct event *event)
-{
-    const struct call *call = &event->as.call;
-    bool speaks_for = call->evidence > 0, is_new = false;
-    struct contact *contact = contacts_near(&watch->contacts, call->group, call->start_ns, gap_ns(watch));
-    if (!contact && !speaks_for)
-        return;
-    if (!contact)
-        contact = find_or_add(watch, call->group, call->start_ns, &is_new);
-    add_evidence(watch, contact, call->evidence);
-    if (!speaks_for)
-        return;
-    int64_t when_ns = call->end_ns < watch->now_ns ? call->end_ns : watch->now_ns;
-    bool was_known = contact->where.known, reopened = contact->state != CONTACT_OPEN;
-    if (is_new)
-        contact->first_ns = call->start_ns < watch->now_ns ? call->start_ns : watch->now_ns;
-    contact->n_calls++;
-    contact->state = CONTACT_OPEN;
-    if (when_ns > contact->last_ns || is_new)
-        contact->last_ns = when_ns;
-    if (call->bearing_from != BEARING_NONE) {
-        contact->bearing_deg = call->bearing_deg;
-        contact->mirror_deg = call->mirror_deg;
-        contact->bearing_from = call->bearing_from;
-    }
-    forget_old_distance(watch, contact, when_ns);
-    contact_add_cause(contact, watch->recent.causes[0]);
-    contact_detect(contact, watch->permit, when_ns);
-    bool beat = watch->now_ns - contact->said_ns >= CONTACT_BEAT_NS;
-    if (raise_grade(watch, contact) || is_new || reopened || was_known != contact->where.known || beat)
-        watch_say_contact(watch, contact);
 }
 
 /* What it held back, if anything, it no longer does. */
@@ -109,6 +78,88 @@ static void let_go(struct watch *watch, struct contact *contact, const char *rea
     why_add_cause(&watch->let_go, watch->recent.causes[0]);
     why_add_contact(&watch->let_go, contact);
     watch->let_go_ns = watch->now_ns;
+}
+
+/* What was taken for an animal was a recognised sound of something else. A contact that a person has seen or
+ * vouched for, or that has gone to the crew, keeps its grade: only people loosen an instruction. */
+static void look_again(struct watch *watch, struct contact *contact, const char *class_name)
+{
+    char text[FLOW_TEXT_SIZE];
+    bool settled = contact->seen || contact->word_ns >= 0 || contact->passed;
+    double most = contact_most_evidence(contact, watch->setup.evidence_decay_s);
+    contact_add_cause(contact, watch->recent.causes[0]);
+    if (!settled && contact->state == CONTACT_OPEN && grade_of(watch, most) < contact->grade)
+        contact->grade = grade_of(watch, most);
+    if (!settled && contact->n_calls == 0 && contact->state == CONTACT_OPEN) {
+        contact->grade = GRADE_NONE;
+        contact->state = CONTACT_CLEARED;
+        contact_let_go(contact);
+    }
+    if (contact->holding && contact_clears_at_ns(contact, watch->permit, watch->now_ns) < 0) {
+        snprintf(text, sizeof text, "contact %u, %s: what was heard was %s", contact->number,
+                 group_text(contact->group), class_name);
+        let_go(watch, contact, text);
+    } else
+        watch_say_contact(watch, contact);
+}
+
+/* A sound that is no animal's: calls that it covers lose what they said. */
+static void take_sound(struct watch *watch, const struct event *event)
+{
+    const struct call *sound = &event->as.call;
+    if (!(sound->evidence < 0))
+        return;
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        struct contact *contact = &watch->contacts.all[i];
+        bool touched = false;
+        for (uint32_t k = 0; k < sound->n_against && k < CALL_MAX_AGAINST; k++)
+            touched = contact_take_back(contact, event->run, event->stream, sound->against[k],
+                                        -sound->evidence, watch->now_ns, watch->setup.evidence_decay_s) ||
+                      touched;
+        if (touched)
+            look_again(watch, contact, sound->class_name);
+    }
+}
+
+/* While it calls, a contact's count of calls in the ledger is at most this old. */
+#define CONTACT_BEAT_NS (30 * TIME_NS_PER_S)
+
+void contact_take_call(struct watch *watch, const struct event *event)
+{
+    const struct call *call = &event->as.call;
+    if (call->n_sounds > 0) {
+        take_sound(watch, event);
+        return;
+    }
+    bool speaks_for = call->evidence > 0, is_new = false;
+    struct contact *contact = contacts_near(&watch->contacts, call->group, call->start_ns, gap_ns(watch));
+    if (!contact && !speaks_for)
+        return;
+    if (!contact)
+        contact = find_or_add(watch, call->group, call->start_ns, &is_new);
+    add_evidence(watch, contact, call->evidence);
+    if (!speaks_for)
+        return;
+    int64_t when_ns = call->end_ns < watch->now_ns ? call->end_ns : watch->now_ns;
+    bool was_known = contact->where.known, reopened = contact->state != CONTACT_OPEN;
+    if (is_new)
+        contact->first_ns = call->start_ns < watch->now_ns ? call->start_ns : watch->now_ns;
+    contact->n_calls++;
+    contact_keep_call(contact, event, when_ns);
+    contact->state = CONTACT_OPEN;
+    if (when_ns > contact->last_ns || is_new)
+        contact->last_ns = when_ns;
+    if (call->bearing_from != BEARING_NONE) {
+        contact->bearing_deg = call->bearing_deg;
+        contact->mirror_deg = call->mirror_deg;
+        contact->bearing_from = call->bearing_from;
+    }
+    forget_old_distance(watch, contact, when_ns);
+    contact_add_cause(contact, watch->recent.causes[0]);
+    contact_detect(contact, watch->permit, when_ns);
+    bool beat = watch->now_ns - contact->said_ns >= CONTACT_BEAT_NS;
+    if (raise_grade(watch, contact) || is_new || reopened || was_known != contact->where.known || beat)
+        watch_say_contact(watch, contact);
 }
 
 /* Puts the contact at a distance unless that would loosen a hold on the word of somebody who is not on

@@ -65,6 +65,10 @@ static void random_call(struct random *random, struct call *call)
                           .certainty = random_uniform(random),
                           .evidence = random_between(random, -5, 5)};
     random_text(random, call->class_name, sizeof call->class_name);
+    call->n_sounds = random_bits(random) % 2 ? (uint32_t)(random_bits(random) % 500) : 0;
+    call->n_against = call->n_sounds > 0 ? (uint32_t)(random_bits(random) % (CALL_MAX_AGAINST + 1)) : 0;
+    for (uint32_t i = 0; i < call->n_against; i++)
+        call->against[i] = 1 + random_bits(random) % 1000000;
 }
 
 static void random_impulse(struct random *random, struct impulse *impulse)
@@ -185,6 +189,10 @@ static void assert_same_call(const struct call *a, const struct call *b)
     SAME(bearing_from);
     SAME_NUMBER(certainty);
     SAME_NUMBER(evidence);
+    SAME(n_sounds);
+    SAME(n_against);
+    for (uint32_t i = 0; i < a->n_against; i++)
+        SAME(against[i]);
 }
 
 static void assert_same_impulse(const struct impulse *a, const struct impulse *b)

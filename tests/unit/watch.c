@@ -384,6 +384,77 @@ static void advice_in_force_is_never_forgotten(void **state)
     assert_int_equal(view.contacts[0].contact.contact, 100);
 }
 
+/* ---- a sound of no animal takes back what was taken for one */
+static void push_call(int64_t at, double evidence)
+{
+    struct event call = {.kind = EVENT_CALL, .stream = 1};
+    call.as.call = (struct call){.group = GROUP_DELPHINID, .start_ns = at - SECOND, .end_ns = at};
+    call.as.call.evidence = evidence;
+    snprintf(call.as.call.class_name, CALL_CLASS_SIZE, "whistle");
+    push(call, at);
+}
+
+/* `against`: how many events before this one its call was. */
+static void push_sound(int64_t at, double evidence, uint64_t against)
+{
+    struct event sound = {.kind = EVENT_CALL, .stream = 1};
+    sound.as.call = (struct call){.start_ns = at - SECOND, .end_ns = at, .evidence = evidence, .n_sounds = 1};
+    snprintf(sound.as.call.class_name, CALL_CLASS_SIZE, "sonar ping");
+    sound.as.call.n_against = against > 0;
+    sound.as.call.against[0] = counter + 1 - against;
+    push(sound, at);
+}
+
+/* By hand: 6 and 6 that fade as exp(-t / 300 s); the sound takes the second one, or all. */
+static void a_sound_takes_back_what_it_covers(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_SIGN_ON, {"person", "Ann"}, {"watch", "visual"});
+    NOTE(0, NOTE_SIGN_ON, {"person", "Bo"}, {"watch", "acoustic"});
+    push_sound(SECOND, -10, 0);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.n_contacts, 0); /* it is part of no contact */
+    push_call(10 * SECOND, 6);
+    push_call(20 * SECOND, 6);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.contacts[0].contact.grade, GRADE_ACT);
+    assert_true(view.contacts[0].countdown_ends_ns > 0);
+    push_sound(25 * SECOND, -10, 1);
+    watch_get_view(watch, &view);
+    const struct watch_contact *contact = &view.contacts[0];
+    assert_near(contact->evidence, 6 * exp(-15.0 / 300), 1e-9);
+    assert_int_equal(contact->contact.n_calls, 1);
+    assert_int_equal(contact->contact.n_taken_back, 1);
+    assert_near(contact->contact.against, 6, 1e-12);
+    assert_int_equal(contact->contact.grade, GRADE_LOOK);
+    assert_int_equal(contact->countdown_ends_ns, -1); /* nobody is asked about it any more */
+    push_sound(30 * SECOND, -2, 3);                   /* part of the first */
+    watch_get_view(watch, &view);
+    assert_near(view.contacts[0].evidence, 4 * exp(-20.0 / 300), 1e-9);
+    push_sound(31 * SECOND, -10, 4);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.contacts[0].contact.state, CONTACT_CLEARED);
+    assert_int_equal(view.contacts[0].contact.n_calls, 0);
+    assert_near(view.contacts[0].contact.against, 12, 1e-12);
+}
+
+/* Once it has gone to the crew, or an observer vouches for it, only people loosen it. */
+static void a_sound_ends_no_instruction(void **state)
+{
+    (void)state;
+    NOTE(0, NOTE_SIGN_ON, {"person", "Ann"}, {"watch", "visual"});
+    NOTE(0, NOTE_SIGN_ON, {"person", "Bo"}, {"watch", "acoustic"});
+    push_call(10 * SECOND, 12);
+    uint64_t of_call = counter;
+    assert_int_equal(watch_advance(watch, 60 * SECOND, &sink), STATUS_OK); /* unanswered: to the crew */
+    push_sound(61 * SECOND, -20, counter + 1 - of_call);
+    watch_get_view(watch, &view);
+    assert_int_equal(view.contacts[0].contact.grade, GRADE_ACT);
+    assert_int_equal(view.contacts[0].contact.state, CONTACT_OPEN);
+    assert_true(view.contacts[0].clears_at_ns > 0);
+    assert_near(view.contacts[0].contact.against, 12, 1e-12);
+}
+
 static void no_room_for_another_person_is_said(void **state)
 {
     (void)state;
@@ -475,6 +546,8 @@ int main(void)
         cmocka_unit_test_setup_teardown(each_station_answers_for_itself, begin, end),
         cmocka_unit_test_setup_teardown(advice_in_force_is_never_forgotten, begin, end),
         cmocka_unit_test_setup_teardown(impulses_carry_their_range, begin, end),
+        cmocka_unit_test_setup_teardown(a_sound_takes_back_what_it_covers, begin, end),
+        cmocka_unit_test_setup_teardown(a_sound_ends_no_instruction, begin, end),
         cmocka_unit_test_setup_teardown(no_room_for_another_person_is_said, begin, end),
     };
     return cmocka_run_group_tests_name("watch", tests, NULL, NULL);

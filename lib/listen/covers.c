@@ -1,0 +1,142 @@
+/* What recognised sounds cover; see covers.h. */
+#include "listen/covers.h"
+#include <math.h>
+#include <string.h>
+
+#define COVERED 0.5       /* share of a call's time, and of its band, that must be covered */
+#define BAND_SHARE 0.02   /* how exactly two detectors tell a frequency, as a share of it ... */
+#define BAND_HZ 50.0      /* ... and at least */
+#define RHYTHM_ERROR 0.03 /* of an interval */
+#define MOST_MULTIPLE 4   /* missed pulses */
+
+void covers_reset(struct covers *covers, const struct call_class *classes, uint32_t n_classes, double rate_hz)
+{
+    memset(covers, 0, sizeof *covers);
+    covers->classes = classes;
+    covers->n_classes = n_classes;
+    covers->rate_hz = rate_hz;
+}
+
+static bool shares_band(const struct found_call *sound, const struct found_call *call)
+{
+    double pad = fmax(BAND_HZ, BAND_SHARE * call->high_hz);
+    double low = fmax(sound->low_hz - pad, call->low_hz), high = fmin(sound->high_hz + pad, call->high_hz);
+    return high >= low && high - low >= COVERED * (call->high_hz - call->low_hz);
+}
+
+/* Pulses of one interval are of one machine; a whole multiple is the same with pulses missed. */
+static bool shares_rhythm(const struct found_call *sound, const struct found_call *call)
+{
+    if (call->n_pulses == 0)
+        return true;
+    if (!(sound->interval_frames > 0) || !(call->interval_frames > 0))
+        return false;
+    double ratio = call->interval_frames / sound->interval_frames;
+    double whole = round(fmax(ratio, 1 / ratio));
+    return whole <= MOST_MULTIPLE && fabs(fmax(ratio, 1 / ratio) / whole - 1) <= RHYTHM_ERROR;
+}
+
+/* Frames of the call that the sound covers. */
+static double covered_frames(const struct found_call *sound, const struct found_call *call)
+{
+    if (!shares_band(sound, call) || !shares_rhythm(sound, call))
+        return 0;
+    return fmax(0, fmin(sound->end_frame, call->end_frame) - fmax(sound->start_frame, call->start_frame));
+}
+
+static bool is_enough(double frames, const struct found_call *call)
+{
+    return frames > 0 && frames >= COVERED * (call->end_frame - call->start_frame);
+}
+
+static uint32_t remembered(uint32_t n)
+{
+    return n < COVERS_REMEMBERED ? n : COVERS_REMEMBERED;
+}
+
+double covers_evidence(const struct covers *covers, const struct found_call *call)
+{
+    double evidence = covers->classes[call->class_index].evidence, frames = 0, taken = 0;
+    for (uint32_t i = 0; i < remembered(covers->n_sounds); i++) {
+        double more = covered_frames(&covers->sounds[i], call);
+        frames += more;
+        if (more > 0)
+            taken = fmax(taken, -covers->classes[covers->sounds[i].class_index].evidence);
+    }
+    return is_enough(frames, call) ? fmax(0, evidence - taken) : evidence;
+}
+
+void covers_keep_call(struct covers *covers, const struct found_call *call, uint64_t counter)
+{
+    covers->calls[covers->n_calls++ % COVERS_REMEMBERED] = (struct covered_call){counter, *call};
+}
+
+uint32_t covers_take_sound(struct covers *covers, const struct joined_call *sound,
+                           uint64_t out_against[CALL_MAX_AGAINST])
+{
+    uint32_t n = 0;
+    if (!(covers->classes[sound->found.class_index].evidence < 0))
+        return 0;
+    covers->sounds[covers->n_sounds++ % COVERS_REMEMBERED] = sound->found;
+    for (uint32_t i = 0; i < remembered(covers->n_calls) && n < CALL_MAX_AGAINST; i++) {
+        struct covered_call *call = &covers->calls[i];
+        double frames = 0;
+        if (call->counter == 0 || covered_frames(&sound->found, &call->found) <= 0)
+            continue;
+        for (uint32_t k = 0; k < remembered(covers->n_sounds); k++)
+            frames += covered_frames(&covers->sounds[k], &call->found);
+        if (!is_enough(frames, &call->found))
+            continue;
+        out_against[n++] = call->counter;
+        call->counter = 0;
+    }
+    return n;
+}
+
+static void gather(struct gathered *gathered, const struct joined_call *sound)
+{
+    struct joined_call *all = &gathered->all;
+    if (gathered->n++ == 0) {
+        *all = *sound;
+        return;
+    }
+    struct found_call sum = sound->found.snr_db > all->found.snr_db ? sound->found : all->found;
+    if (sound->found.snr_db > all->found.snr_db)
+        all->channel = sound->channel;
+    sum.start_frame = fmin(all->found.start_frame, sound->found.start_frame);
+    sum.end_frame = fmax(all->found.end_frame, sound->found.end_frame);
+    sum.low_hz = fmin(all->found.low_hz, sound->found.low_hz);
+    sum.high_hz = fmax(all->found.high_hz, sound->found.high_hz);
+    sum.n_pulses = all->found.n_pulses + sound->found.n_pulses;
+    all->found = sum;
+}
+
+bool covers_gives_now(struct covers *covers, const struct joined_call *sound, bool urgent)
+{
+    struct gathered *gathered = &covers->gathered[sound->found.class_index];
+    uint64_t known = sound->found.known_frame;
+    if (!urgent &&
+        (gathered->n > 0 || (gathered->given && (double)known < (double)gathered->given_frame +
+                                                                    COVERS_ENTRY_S * covers->rate_hz))) {
+        gather(gathered, sound);
+        return false;
+    }
+    gathered->given = true;
+    if (gathered->n == 0)
+        gathered->given_frame = known;
+    return true;
+}
+
+void covers_give(struct covers *covers, uint64_t end_frame, bool all, const struct gathered_sink *sink)
+{
+    for (uint32_t c = 0; c < covers->n_classes; c++) {
+        struct gathered *gathered = &covers->gathered[c];
+        if (gathered->n == 0 ||
+            (!all && (double)end_frame < (double)gathered->given_frame + COVERS_ENTRY_S * covers->rate_hz))
+            continue;
+        sink->take(sink->context, &gathered->all, gathered->n);
+        gathered->n = 0;
+        gathered->given = true;
+        gathered->given_frame = end_frame;
+    }
+}

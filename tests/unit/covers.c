@@ -1,0 +1,129 @@
+/* lib/listen/covers: what recognised sounds cover, and how often they are told. Checked by hand. */
+#include "support/test.h"
+
+#include "listen/covers.h"
+
+#define RATE 48000.0
+enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, N_CLASSES };
+
+static const struct call_class classes[N_CLASSES] = {
+    [WHISTLE] = {.name = "whistle", .animal = true, .form = CALL_TONE, .evidence = 2},
+    [CLICKS] = {.name = "clicks", .animal = true, .form = CALL_TRAIN, .evidence = 3},
+    [PING] = {.name = "ping", .form = CALL_TONE, .evidence = -5},
+    [RAIN] = {.name = "rain", .form = CALL_NOISE, .evidence = 0},
+    [SOUNDER] = {.name = "sounder", .form = CALL_TRAIN, .evidence = -1},
+};
+
+static struct found_call sound_of(uint32_t class_index, double start_s, double end_s, double low_hz,
+                                  double high_hz)
+{
+    return (struct found_call){.class_index = class_index,
+                               .start_frame = start_s * RATE,
+                               .end_frame = end_s * RATE,
+                               .known_frame = (uint64_t)(end_s * RATE),
+                               .low_hz = low_hz,
+                               .high_hz = high_hz};
+}
+
+static uint32_t take(struct covers *covers, struct found_call found, uint64_t *against)
+{
+    const struct joined_call joined = {1, found};
+    return covers_take_sound(covers, &joined, against);
+}
+
+static void a_sound_before_the_call_withholds_it(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    assert_int_equal(take(&covers, sound_of(PING, 1, 2, 6900, 7100), against), 0);
+    struct found_call call = sound_of(WHISTLE, 1.1, 1.9, 6950, 7050);
+    assert_near(covers_evidence(&covers, &call), 0, 0); /* covered: at most what it has is taken */
+    call.start_frame = 0.9 * RATE, call.end_frame = 3.5 * RATE;
+    assert_near(covers_evidence(&covers, &call), 2, 0); /* most of its time is not */
+    call = sound_of(WHISTLE, 1.1, 1.9, 6000, 9000);
+    assert_near(covers_evidence(&covers, &call), 2, 0); /* most of its band is not */
+    call = sound_of(WHISTLE, 1.1, 1.9, 9000, 9100);
+    assert_near(covers_evidence(&covers, &call), 2, 0);
+}
+
+static void a_sound_after_the_call_names_it_once(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST] = {0};
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    struct found_call call = sound_of(WHISTLE, 1.1, 1.9, 6950, 7050);
+    covers_keep_call(&covers, &call, 7);
+    assert_int_equal(take(&covers, sound_of(RAIN, 0, 9, 100, 20000), against), 0); /* says nothing against */
+    assert_int_equal(take(&covers, sound_of(PING, 1, 1.4, 6950, 7050), against), 0);
+    assert_int_equal(take(&covers, sound_of(PING, 1.5, 2, 6950, 7050), against), 1); /* both together do */
+    assert_int_equal(against[0], 7);
+    assert_int_equal(take(&covers, sound_of(PING, 1, 2, 6950, 7050), against), 0);
+}
+
+/* An echosounder's pings say nothing against a porpoise that clicks in another rhythm. */
+static void trains_are_covered_by_their_own_rhythm_only(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    struct found_call sounder = sound_of(SOUNDER, 0, 10, 110000, 150000);
+    sounder.n_pulses = 100, sounder.interval_frames = 0.1 * RATE;
+    assert_int_equal(take(&covers, sounder, against), 0);
+    struct found_call clicks = sound_of(CLICKS, 2, 4, 110000, 150000);
+    clicks.n_pulses = 30, clicks.interval_frames = 0.066 * RATE;
+    assert_near(covers_evidence(&covers, &clicks), 3, 0);
+    clicks.interval_frames = 0.2002 * RATE; /* each second ping */
+    assert_near(covers_evidence(&covers, &clicks), 2, 0);
+}
+
+struct told {
+    uint32_t n, n_sounds;
+    struct found_call last;
+};
+
+static void take_gathered(void *context, const struct joined_call *sound, uint32_t n_sounds)
+{
+    struct told *told = context;
+    told->n++;
+    told->n_sounds += n_sounds;
+    told->last = sound->found;
+}
+
+/* A ping each second for a minute: the first at once, then an entry each 10 s; none is lost. */
+static void entries_come_at_most_every_ten_seconds(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    struct told told = {0};
+    const struct gathered_sink sink = {take_gathered, &told};
+    uint32_t at_once = 0;
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    for (int i = 0; i < 60; i++) {
+        const struct joined_call ping = {2, sound_of(PING, i, i + 0.25, 7000, 7000)};
+        at_once += covers_gives_now(&covers, &ping, false);
+        covers_give(&covers, (uint64_t)((i + 0.5) * RATE), false, &sink);
+    }
+    assert_int_equal(at_once, 1);
+    assert_int_equal(told.n, 5);
+    covers_give(&covers, 60 * (uint64_t)RATE, true, &sink);
+    assert_int_equal(told.n, 6);
+    assert_int_equal(at_once + told.n_sounds, 60);
+    assert_near(told.last.end_frame, 59.25 * RATE, 1);
+    const struct joined_call ping = {2, sound_of(PING, 61, 61.25, 7000, 7000)};
+    assert_true(covers_gives_now(&covers, &ping, true)); /* one that speaks against a call never waits */
+}
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test(a_sound_before_the_call_withholds_it),
+        cmocka_unit_test(a_sound_after_the_call_names_it_once),
+        cmocka_unit_test(trains_are_covered_by_their_own_rhythm_only),
+        cmocka_unit_test(entries_come_at_most_every_ten_seconds),
+    };
+    return cmocka_run_group_tests_name("covers", tests, NULL, NULL);
+}
