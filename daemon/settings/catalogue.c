@@ -45,6 +45,27 @@ static void read_tone(struct group_reader *group, struct tone_shape *tone)
         tone->max_extent_hz = INFINITY;
 }
 
+/* Limits of what a pulse looks like; what is left out is free. */
+static void read_pulse_limits(struct group_reader *group, struct train_shape *train)
+{
+    const double most_hz_s = 1e12;
+    train->max_centroid_hz = train->max_bandwidth_hz = train->max_length_s = train->max_sweep_hz_s = INFINITY;
+    train->min_sweep_hz_s = -INFINITY;
+    group_number(group, "min_centroid_hz", READER_OPTIONAL, 0, 1e6, &train->min_centroid_hz);
+    group_number(group, "max_centroid_hz", READER_OPTIONAL, 0, 1e6, &train->max_centroid_hz);
+    group_number(group, "min_bandwidth_hz", READER_OPTIONAL, 0, 1e6, &train->min_bandwidth_hz);
+    group_number(group, "max_bandwidth_hz", READER_OPTIONAL, 0, 1e6, &train->max_bandwidth_hz);
+    group_number(group, "min_length_s", READER_OPTIONAL, 0, 10, &train->min_length_s);
+    group_number(group, "max_length_s", READER_OPTIONAL, 0, 10, &train->max_length_s);
+    group_number(group, "min_sweep_hz_s", READER_OPTIONAL, -most_hz_s, most_hz_s, &train->min_sweep_hz_s);
+    group_number(group, "max_sweep_hz_s", READER_OPTIONAL, -most_hz_s, most_hz_s, &train->max_sweep_hz_s);
+    check_order(group, train->min_centroid_hz, train->max_centroid_hz, "min_centroid_hz", "max_centroid_hz");
+    check_order(group, train->min_bandwidth_hz, train->max_bandwidth_hz, "min_bandwidth_hz",
+                "max_bandwidth_hz");
+    check_order(group, train->min_length_s, train->max_length_s, "min_length_s", "max_length_s");
+    check_order(group, train->min_sweep_hz_s, train->max_sweep_hz_s, "min_sweep_hz_s", "max_sweep_hz_s");
+}
+
 static void read_train(struct group_reader *group, struct train_shape *train)
 {
     double min_pulses = 0;
@@ -53,18 +74,29 @@ static void read_train(struct group_reader *group, struct train_shape *train)
     group_number(group, "min_snr_db", READER_REQUIRED, 0, 60, &train->min_snr_db);
     group_number(group, "min_interval_s", READER_REQUIRED, 0.0005, 100, &train->min_interval_s);
     group_number(group, "max_interval_s", READER_REQUIRED, 0.001, 100, &train->max_interval_s);
-    group_number(group, "max_jitter", READER_REQUIRED, 0, 5, &train->max_jitter);
+    group_flag(group, "free_rhythm", READER_OPTIONAL, &train->free_rhythm);
+    train->max_jitter = 1;
+    group_number(group, "max_jitter", train->free_rhythm ? READER_OPTIONAL : READER_REQUIRED, 0, 5,
+                 &train->max_jitter);
     group_number(group, "min_jitter", READER_OPTIONAL, 0, 5, &train->min_jitter);
     group_number(group, "min_pulses", READER_REQUIRED, 2, 1000, &min_pulses);
     group_number(group, "guard_low_hz", READER_OPTIONAL, 0, 1e6, &train->guard_low_hz);
     group_number(group, "guard_high_hz", READER_OPTIONAL, 0, 1e6, &train->guard_high_hz);
     group_number(group, "min_guard_db", READER_OPTIONAL, -60, 80, &train->min_guard_db);
+    group_number(group, "upper_low_hz", READER_OPTIONAL, 0, 1e6, &train->upper_low_hz);
+    group_number(group, "upper_high_hz", READER_OPTIONAL, 0, 1e6, &train->upper_high_hz);
+    group_number(group, "min_upper_db", READER_OPTIONAL, -60, 80, &train->min_upper_db);
+    read_pulse_limits(group, train);
+    group_number(group, "echo_s", READER_OPTIONAL, 1e-5, 0.5, &train->echo_s);
+    group_number(group, "tail_s", READER_OPTIONAL, 0, 5, &train->tail_s);
     train->min_pulses = (uint32_t)min_pulses;
     check_order(group, train->pulse_s, train->max_pulse_s, "pulse_s", "max_pulse_s");
     check_order(group, train->min_interval_s, train->max_interval_s, "min_interval_s", "max_interval_s");
     check_order(group, train->min_jitter, train->max_jitter, "min_jitter", "max_jitter");
     if (train->guard_low_hz != 0 || train->guard_high_hz != 0)
         check_order(group, train->guard_low_hz, train->guard_high_hz, "guard_low_hz", "guard_high_hz");
+    if (train->upper_low_hz != 0 || train->upper_high_hz != 0)
+        check_order(group, train->upper_low_hz, train->upper_high_hz, "upper_low_hz", "upper_high_hz");
 }
 
 static void read_class(struct group_reader *root, struct call_class *class)

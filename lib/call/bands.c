@@ -27,7 +27,8 @@ struct bands {
     struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
     double delay[BANDS_MAX];
     struct group groups[BANDS_MAX / LANES];
-    float *power; /* [n_groups * LANES][stride] */
+    float *power;   /* [n_groups * LANES][stride] */
+    float *samples; /* [stride * slot_frames] */
 };
 
 bool bands_rate_carries(double rate_hz, struct band_edges edges)
@@ -144,7 +145,8 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->history_slots = bands->at = history_slots;
     bands->stride = history_slots + SPARE_BLOCKS * block_slots;
     bands->power = calloc((size_t)bands->n_groups * LANES * bands->stride, sizeof(float));
-    if (!bands->power) {
+    bands->samples = calloc((size_t)bands->stride * slot_frames, sizeof(float));
+    if (!bands->power || !bands->samples) {
         bands_destroy(bands);
         return STATUS_NO_MEMORY;
     }
@@ -167,6 +169,7 @@ void bands_reset(struct bands *bands)
         group->x1 = group->x2 = 0;
     }
     memset(bands->power, 0, sizeof(float) * bands->n_groups * LANES * bands->stride);
+    memset(bands->samples, 0, sizeof(float) * bands->stride * bands->slot_frames);
 }
 
 /* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
@@ -215,6 +218,9 @@ static void next_place(struct bands *bands)
         float *row = bands->power + (size_t)b * bands->stride;
         memmove(row, row + bands->at - bands->history_slots, bands->history_slots * sizeof *row);
     }
+    size_t first = (size_t)(bands->at - bands->history_slots) * bands->slot_frames;
+    size_t kept = (size_t)bands->history_slots * bands->slot_frames;
+    memmove(bands->samples, bands->samples + first, kept * sizeof *bands->samples);
     bands->at = bands->history_slots;
 }
 
@@ -222,6 +228,8 @@ void bands_push(struct bands *bands, const float *samples)
 {
     bool finite = true;
     next_place(bands);
+    memcpy(bands->samples + (size_t)bands->at * bands->slot_frames, samples,
+           (size_t)bands->block_slots * bands->slot_frames * sizeof *samples);
     for (uint32_t g = 0; g < bands->n_groups; g++) {
         float *block = bands->power + (size_t)g * LANES * bands->stride + bands->at;
         filter_group(bands, &bands->groups[g], samples, block);
@@ -237,6 +245,11 @@ const float *bands_get_power(const struct bands *bands, uint32_t b)
     return bands->power + (size_t)b * bands->stride + bands->at;
 }
 
+const float *bands_get_samples(const struct bands *bands)
+{
+    return bands->samples + (size_t)bands->at * bands->slot_frames;
+}
+
 double bands_get_delay(const struct bands *bands, uint32_t b)
 {
     return bands->delay[b];
@@ -247,5 +260,6 @@ void bands_destroy(struct bands *bands)
     if (!bands)
         return;
     free(bands->power);
+    free(bands->samples);
     free(bands);
 }

@@ -34,6 +34,9 @@ void bands_push(struct bands *bands, const float *samples);
 /* Mean square of each slot of the last block in band b: [block_slots], with [-history_slots .. -1] before it
  * readable. Valid until the next push. */
 const float *bands_get_power(const struct bands *bands, uint32_t b);
+/* The samples of the last block as they were pushed, [block_slots * slot_frames], with as many before them as
+ * history_slots covers. Valid until the next push. */
+const float *bands_get_samples(const struct bands *bands);
 /* Frames by which band b is late: the centre of its impulse response's energy. */
 double bands_get_delay(const struct bands *bands, uint32_t b);
 /* How the power over a window of n slots is distributed in white Gaussian noise, computed from the filter.

@@ -30,9 +30,20 @@ struct train_shape {
     double max_jitter; /* largest standard deviation of ln(interval ratio) that is a train */
     double min_jitter; /* smallest: below it is a machine; 0 where free */
     uint32_t min_pulses;
+    bool free_rhythm; /* tied by likeness alone (codas); the limits of jitter do not count */
     double guard_low_hz, guard_high_hz; /* a band that must be quieter ... 0, 0 where none */
     double min_guard_db;                /* ... by at least this much */
-    double max_pulse_s;                 /* a pulse that lasts longer is none of the class */
+    double upper_low_hz, upper_high_hz; /* another, looked at where the rate carries it */
+    double min_upper_db;
+    double max_pulse_s; /* a pulse that lasts longer is none of the class */
+    /* Medians over a train's pulses, of what lies in the class's band (call/pulse_shape.h); 0, INFINITY and
+       -INFINITY where free. */
+    double min_centroid_hz, max_centroid_hz;
+    double min_bandwidth_hz, max_bandwidth_hz;
+    double min_length_s, max_length_s;
+    double min_sweep_hz_s, max_sweep_hz_s;
+    double echo_s; /* what follows a pulse within this time is tied to it as its echo */
+    double tail_s; /* and within this, what is 10 dB weaker */
 };
 
 struct call_class {

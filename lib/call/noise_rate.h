@@ -7,6 +7,17 @@
 
 #define NOISE_RATE_POINTS 512
 
+/* Pulses a second that noise alone gives at this snr (ratio) or more. */
+struct noise_rate {
+    double (*get)(const void *context, double snr);
+    const void *context;
+};
+
+/* The rate of noise pulses that compete with one of this snr. Its level speaks against noise, of which ever
+ * fewer reach it, as far as the spread of an animal's own levels (a standard deviation, dB) lets it: the rate
+ * per dB there, over that spread; or all of the noise's pulses, at least_snr or more, where that is less. */
+double noise_rate_competing(const struct noise_rate *noise, double snr, double least_snr, double spread_db);
+
 /* Plain data. */
 struct noise_table {
     double step;                       /* of snr (ratio), from 0 */

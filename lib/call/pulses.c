@@ -1,7 +1,7 @@
 /* All train classes of one channel. */
 #include "call/pulses.h"
 #include "call/bands.h"
-#include "call/trains.h"
+#include "call/tied.h"
 #include "call/trigger.h"
 #include "dsp/decimate.h"
 #include <math.h>
@@ -38,9 +38,9 @@ struct stage {
 /* One hearable class. */
 struct ear {
     const struct call_class *call_class;
-    uint32_t class_index, stage, band, guard;
+    uint32_t class_index, stage, band, guards[TRIGGER_GUARDS];
     struct trigger *trigger;
-    struct trains *trains;
+    struct tied tied;
     uint64_t rejections[REJECT_COUNT];
 };
 
@@ -54,12 +54,12 @@ struct pulses {
     const struct found_sink *sink; /* of the push at hand */
     uint64_t known_frame;
     const struct train *given; /* while the sink has it */
-    const struct trains *given_by;
 };
 
 static double highest_hz(const struct call_class *call_class)
 {
-    return fmax(call_class->high_hz, call_class->train.guard_high_hz);
+    const struct train_shape *shape = &call_class->train;
+    return fmax(call_class->high_hz, fmax(shape->guard_high_hz, shape->upper_high_hz));
 }
 
 static uint32_t factor_of(const struct call_class *call_class, double rate_hz)
@@ -118,9 +118,13 @@ static enum status add_ear(struct pulses *pulses, const struct call_class *call_
         return STATUS_BAD_ARGUMENT;
     const struct train_shape *shape = &call_class->train;
     ear->band = add_edges(stage, call_class->low_hz, call_class->high_hz);
+    struct band_edges upper = {shape->upper_low_hz, shape->upper_high_hz};
+    ear->guards[0] = ear->guards[1] = TRIGGER_NO_GUARD;
     if (shape->guard_high_hz > 0)
-        ear->guard = add_edges(stage, shape->guard_low_hz, shape->guard_high_hz);
-    if (ear->band == BANDS_MAX || ear->guard == BANDS_MAX)
+        ear->guards[0] = add_edges(stage, shape->guard_low_hz, shape->guard_high_hz);
+    if (upper.high_hz > 0 && bands_rate_carries(stage->rate_hz, upper))
+        ear->guards[1] = add_edges(stage, upper.low_hz, upper.high_hz);
+    if (ear->band == BANDS_MAX || ear->guards[0] == BANDS_MAX || ear->guards[1] == BANDS_MAX)
         return STATUS_BAD_ARGUMENT;
     uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * stage->rate_hz / SLOTS_PER_PULSE));
     if (!stage->slot_frames || slot < stage->slot_frames)
@@ -163,10 +167,11 @@ static enum status create_ear(struct pulses *pulses, struct ear *ear)
         .call_class = ear->call_class,
         .bands = stage->bands,
         .band = ear->band,
-        .guard = ear->guard,
+        .guards = {ear->guards[0], ear->guards[1]},
         .rate_hz = stage->rate_hz,
         .slot_frames = stage->slot_frames,
         .block_slots = stage->block_slots,
+        .history_slots = stage->history_slots,
         .frames_per_frame = stage->factor,
         .delay_frames = stage->decimator ? decimator_get_delay(stage->decimator) : 0,
     };
@@ -174,7 +179,7 @@ static enum status create_ear(struct pulses *pulses, struct ear *ear)
     if (status != STATUS_OK)
         return status;
     struct noise_rate noise = {noise_rate_of, ear->trigger};
-    return trains_create(ear->call_class, pulses->rate_hz, noise, &ear->trains);
+    return tied_create(ear->call_class, pulses->rate_hz, noise, &ear->tied);
 }
 
 enum status pulses_create(const struct call_class *classes, uint32_t n_classes, double rate_hz,
@@ -215,7 +220,7 @@ void pulses_reset(struct pulses *pulses, uint64_t next_frame)
     }
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         trigger_reset(pulses->ears[e].trigger);
-        trains_reset(pulses->ears[e].trains);
+        tied_reset(&pulses->ears[e].tied);
     }
 }
 
@@ -228,7 +233,11 @@ struct hearing {
 static void take_train(void *context, const struct train *train)
 {
     const struct hearing *hearing = context;
-    const struct ear *ear = hearing->ear;
+    struct ear *ear = hearing->ear;
+    if (!train_fits(train, &ear->call_class->train)) {
+        ear->rejections[REJECT_SHAPE]++;
+        return;
+    }
     double half = ear->call_class->train.pulse_s * hearing->pulses->rate_hz / 2;
     double first = (double)hearing->pulses->first_frame;
     struct found_call found = {
@@ -245,7 +254,6 @@ static void take_train(void *context, const struct train *train)
             (train->end_energy - train->start_energy) / fmax(1, train->end_frame - train->start_frame),
     };
     hearing->pulses->given = train;
-    hearing->pulses->given_by = ear->trains;
     hearing->pulses->sink->take(hearing->pulses->sink->context, &found);
     hearing->pulses->given = NULL;
 }
@@ -254,7 +262,7 @@ static void take_pulse(void *context, const struct pulse *pulse)
 {
     struct hearing *hearing = context;
     struct train_sink sink = {take_train, hearing};
-    trains_push(hearing->ear->trains, pulse, &sink, hearing->ear->rejections);
+    tied_push(&hearing->ear->tied, pulse, &sink, hearing->ear->rejections);
 }
 
 static void search_block(struct pulses *pulses, uint32_t index, const float *block)
@@ -272,7 +280,7 @@ static void search_block(struct pulses *pulses, uint32_t index, const float *blo
         struct pulse_sink pulse_sink = {take_pulse, &hearing};
         struct train_sink train_sink = {take_train, &hearing};
         trigger_push(ear->trigger, &pulse_sink, ear->rejections);
-        trains_advance(ear->trains, trigger_get_known(ear->trigger), &train_sink, ear->rejections);
+        tied_advance(&ear->tied, trigger_get_known(ear->trigger), &train_sink, ear->rejections);
     }
 }
 
@@ -326,7 +334,7 @@ void pulses_finish(struct pulses *pulses, const struct found_sink *sink)
         struct pulse_sink pulse_sink = {take_pulse, &hearing};
         struct train_sink train_sink = {take_train, &hearing};
         trigger_finish(ear->trigger, &pulse_sink);
-        trains_finish(ear->trains, &train_sink, ear->rejections);
+        tied_finish(&ear->tied, &train_sink, ear->rejections);
     }
 }
 
@@ -336,7 +344,7 @@ void pulses_hide(struct pulses *pulses, double start_frame, double end_frame, do
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         struct ear *ear = &pulses->ears[e];
         if (ear->call_class->low_hz < high_hz && ear->call_class->high_hz > low_hz)
-            trains_hide(ear->trains, start_frame - first, end_frame - first, ear->rejections);
+            tied_hide(&ear->tied, start_frame - first, end_frame - first, ear->rejections);
     }
 }
 
@@ -360,8 +368,7 @@ bool pulses_get_arrivals(const struct pulses *pulses, double *out)
     if (!pulses->given)
         return false;
     for (uint32_t i = 0; i < pulses->given->n_pulses; i++)
-        out[i] =
-            (double)pulses->first_frame + trains_get_arrival(pulses->given_by, pulses->given->members[i]);
+        out[i] = (double)pulses->first_frame + pulses->given->arrivals[i];
     return true;
 }
 
@@ -370,7 +377,7 @@ void pulses_destroy(struct pulses *pulses)
     if (!pulses)
         return;
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
-        trains_destroy(pulses->ears[e].trains);
+        tied_destroy(&pulses->ears[e].tied);
         trigger_destroy(pulses->ears[e].trigger);
     }
     for (uint32_t s = 0; s < pulses->n_stages; s++) {

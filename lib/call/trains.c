@@ -1,4 +1,5 @@
 /* Trains of one class: opened, carried on, given in pieces, ended. */
+#include "base/median.h"
 #include "base/units.h"
 #include "call/trains_inside.h"
 #include <math.h>
@@ -65,18 +66,18 @@ static bool train_is_open(const struct trains *trains, uint32_t number)
     return false;
 }
 
-static double median(double *values, uint32_t n)
-{
-    qsort(values, n, sizeof *values, trains_compare_doubles);
-    return n % 2 ? values[n / 2] : (values[n / 2 - 1] + values[n / 2]) / 2;
-}
-
 static struct open_train *free_place(struct trains *trains)
 {
     for (int i = 0; i < MAX_OPEN; i++)
         if (!trains->open[i].number)
             return &trains->open[i];
     return NULL;
+}
+
+static const struct pulse *member_of(const void *context, uint32_t i)
+{
+    const struct trains *trains = context;
+    return &trains_node(trains, trains->members[i])->pulse;
 }
 
 /* Gives what is new of a train. */
@@ -86,8 +87,6 @@ static void give(struct trains *trains, struct open_train *open, const struct tr
     uint32_t n = trains_walk(trains, open->last, open->last_link, open->given, TRAINS_MAX_MEMBERS);
     if (n == 0)
         return;
-    const struct node *last = trains_node(trains, trains->members[0]);
-    const struct node *first = trains_node(trains, trains->members[n - 1]);
     double jitter = trains_walked_jitter(trains, n);
     bool steady = n >= MACHINE_PULSES ? jitter < trains->call_class.train.min_jitter : open->machine;
     if (steady && !open->machine)
@@ -99,27 +98,21 @@ static void give(struct trains *trains, struct open_train *open, const struct tr
             trains->sorted[n_intervals++] =
                 exp(trains_node(trains, trains->members[i])->links[trains->chain_link[i]].ln_interval);
     struct train train = {.number = open->number,
-                          .start_frame = first->frame,
-                          .end_frame = last->frame,
                           .interval_frames =
-                              n_intervals ? median(trains->sorted, n_intervals) * trains->rate_hz : 0,
+                              n_intervals ? median_of(trains->sorted, n_intervals) * trains->rate_hz : 0,
                           .jitter = jitter,
-                          .start_energy = first->energy,
-                          .end_energy = last->energy,
-                          .n_pulses = n,
                           .members = trains->members};
-    for (uint32_t i = 0; i < n; i++) {
+    for (uint32_t i = 0; i < n; i++)
         trains_node(trains, trains->members[i])->owner = open->number;
-        trains->sorted[i] = trains_node(trains, trains->members[i])->snr;
-    }
-    train.snr_db = units_power_db(median(trains->sorted, n));
     for (uint32_t i = 0; i < n / 2; i++) {
         uint64_t swap = trains->members[i];
         trains->members[i] = trains->members[n - 1 - i];
         trains->members[n - 1 - i] = swap;
     }
+    struct train_pulses pulses = {member_of, trains, n};
+    train_describe(&pulses, trains->sorted, trains->arrivals, &train);
     open->given = open->last;
-    open->given_time_s = last->time_s;
+    open->given_time_s = trains_node(trains, open->last)->time_s;
     if (!steady)
         sink->take(sink->context, &train);
 }
@@ -197,8 +190,10 @@ static double fading_strays(struct trains *trains, struct open_train *open)
     open->strays *= FADING;
     open->strays_s = open->strays_s * FADING + node->time_s - trains_node(trains, open->last)->time_s;
     for (uint64_t k = open->last + 1; k + 1 < trains->n_pulses; k++)
-        open->strays += trains_node(trains, k)->level_db > node->level_db - LEVEL_STEP_DB;
-    return open->strays / fmax(open->strays_s, 1e-3) + trains_noise_rate(trains, node->snr) + RATE_FLOOR;
+        open->strays += trains_node(trains, k)->level_db > node->level_db - LEVEL_STEP_DB &&
+                        trains_may_be_one(trains_node(trains, k), node);
+    return open->strays / fmax(open->strays_s, 1e-3) + trains_noise_rate(trains, node->pulse.snr) +
+           RATE_FLOOR;
 }
 
 /* Makes the newest pulse, with that link, the end of a train. */
@@ -289,18 +284,13 @@ void trains_hide(struct trains *trains, double start_frame, double end_frame, ui
 {
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1); k--) {
         struct node *node = trains_node(trains, k - 1);
-        if (node->frame < start_frame)
+        if (node->pulse.frame < start_frame)
             return;
-        if (node->frame > end_frame || node->owner != 0)
+        if (node->pulse.frame > end_frame || node->owner != 0)
             continue;
         node->owner = HIDDEN;
         rejections[REJECT_OWN_SOURCE]++;
     }
-}
-
-double trains_get_arrival(const struct trains *trains, uint64_t member)
-{
-    return trains_node(trains, member)->frame;
 }
 
 void trains_destroy(struct trains *trains)

@@ -25,34 +25,12 @@
 #include "base/status.h"
 #include "call/catalogue.h"
 #include "call/found.h"
+#include "call/noise_rate.h"
+#include "call/train.h"
 #include "call/trigger.h"
 #include <stdint.h>
 
 #define TRAINS_MAX_MEMBERS 256
-
-/* One piece of a train; `members` are the numbers of its pulses, counted from 0 in the order of trains_push.
- */
-struct train {
-    uint32_t number; /* of the train: pieces of one train share it; from 1 */
-    double start_frame, end_frame;
-    double interval_frames; /* median between neighbouring pulses (a missed one accounted for) */
-    double jitter;          /* root mean square of ln(interval ratio) */
-    double snr_db;          /* median of the pulses' */
-    double start_energy, end_energy;
-    uint32_t n_pulses;
-    const uint64_t *members; /* [n_pulses], borrowed for the call */
-};
-
-struct train_sink {
-    void (*take)(void *context, const struct train *train);
-    void *context;
-};
-
-/* Pulses a second that noise alone gives at this snr (ratio) or more. */
-struct noise_rate {
-    double (*get)(const void *context, double snr);
-    const void *context;
-};
 
 struct trains;
 
@@ -70,9 +48,6 @@ void trains_finish(struct trains *trains, const struct train_sink *sink, uint64_
 /* The pulses that arrived in [start, end] are the own source's: they count for no train. Those that a train
  * has already been given for stay given. Adds to rejections[REJECT_OWN_SOURCE]. */
 void trains_hide(struct trains *trains, double start_frame, double end_frame, uint64_t *rejections);
-/* When the pulse of that number arrived, in frames; it must be a member of the train that the sink is being
- * given. */
-double trains_get_arrival(const struct trains *trains, uint64_t member);
 void trains_destroy(struct trains *trains);
 
 #endif

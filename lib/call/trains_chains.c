@@ -47,7 +47,7 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
 }
 
 /* A chain of two pulses. */
-static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score,
+static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score, double alike,
                               double ln_rate)
 {
     return (struct link){.previous = number,
@@ -59,7 +59,8 @@ static struct link first_pair(uint64_t number, double time_s, double ln_interval
                          .gain = score,
                          .score = {score, score},
                          .ln_rates = ln_rate,
-                         .rank = score - ln_rate};
+                         .alike = alike,
+                         .rank = score + alike - ln_rate};
 }
 
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
@@ -69,10 +70,12 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     const struct node *from = trains_node(trains, number);
     double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
     double ln_interval = log(interval);
-    double level_cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
+    double likeness = pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape), alike = fmax(0, likeness);
+    /* Only what speaks against a pair counts in the score: no factor above 1 that chance could earn. */
+    double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB) - fmin(0, likeness);
     struct link best = {.rank = -INFINITY};
     if (interval <= shape->max_interval_s && from->owner == 0)
-        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - level_cost,
+        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - cost, alike,
                           ln_rate);
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
@@ -85,10 +88,10 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
         if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
             step_s > shape->max_interval_s)
             continue;
-        double common = trains->ln_steps[m] - ln_interval - level_cost;
+        double common = trains->ln_steps[m] - ln_interval - cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
         double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
-        double rank = fmax(score[NARROW], score[WIDE]) - link->ln_rates - ln_rate;
+        double rank = fmax(score[NARROW], score[WIDE]) + link->alike + alike - link->ln_rates - ln_rate;
         if (rank <= best.rank)
             continue;
         best = (struct link){.previous = number,
@@ -103,6 +106,7 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .gain = fmax(gain[NARROW], gain[WIDE]),
                              .score = {score[NARROW], score[WIDE]},
                              .ln_rates = link->ln_rates + ln_rate,
+                             .alike = link->alike + alike,
                              .rank = rank};
     }
     if (best.rank > -INFINITY)
@@ -145,7 +149,7 @@ double trains_walked_jitter(const struct trains *trains, uint32_t n)
 static void link_back(const struct trains *trains, struct node *node)
 {
     const struct train_shape *shape = &trains->call_class.train;
-    double ln_rate = log(trains_noise_rate(trains, node->snr) +
+    double ln_rate = log(trains_noise_rate(trains, node->pulse.snr) +
                          RANK_SHARE * trains->rate_above[trains_level_index(node)] + RATE_FLOOR);
     for (uint64_t k = trains->n_pulses - 1; k > 0 && trains_remember(trains, k - 1); k--) {
         const struct node *from = trains_node(trains, k - 1);
@@ -171,10 +175,8 @@ void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t 
         trains->rate_above[l] =
             trains->rate_above[l] * keep_share + (level_db >= l * LEVEL_STEP_DB ? 1 / memory_s : 0);
     node->time_s = time_s;
-    node->frame = pulse->frame;
-    node->snr = pulse->snr;
+    node->pulse = *pulse;
     node->level_db = level_db;
-    node->energy = pulse->energy;
     node->owner = 0;
     node->n_links = 0;
     trains->n_pulses++;

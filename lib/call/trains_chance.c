@@ -1,15 +1,10 @@
 /* Whether a chain of pulses is more than chance. */
+#include "base/median.h"
 #include "base/units.h"
 #include "call/trains_inside.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
-
-int trains_compare_doubles(const void *a, const void *b)
-{
-    double x = *(const double *)a, y = *(const double *)b;
-    return (x > y) - (x < y);
-}
 
 /* Pulses that compete with a chain: within its time all that are not its own; before, all of no train (a
  * train that was given is no chance). */
@@ -25,17 +20,20 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
     double span = fmax(end - start, RATE_INTERVALS * trains->call_class.train.max_interval_s), reached = 0;
     struct competitors found = {0};
     uint32_t member = 0;
+    const struct node *one = trains_node(trains, trains->members[0]);
+    const struct node *other = trains_node(trains, trains->members[n / 2]);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1) && reached <= span; k--) {
         const struct node *node = trains_node(trains, k - 1);
         reached = end - node->time_s;
         bool within = node->time_s >= start;
         if (member < n && trains->members[member] == k - 1) {
             member++;
-        } else if (node->owner != HIDDEN && reached <= span && (within || node->owner == 0)) {
+        } else if (node->owner != HIDDEN && reached <= span && (within || node->owner == 0) &&
+                   (trains_may_be_one(node, one) || trains_may_be_one(node, other))) {
             trains->competing[found.n++] = node->level_db;
         }
     }
-    qsort(trains->competing, found.n, sizeof *trains->competing, trains_compare_doubles);
+    qsort(trains->competing, found.n, sizeof *trains->competing, median_compare);
     if (trains->n_pulses <= RING)
         reached = end; /* nothing is forgotten: the time before the first pulse was heard too */
     found.time_s = fmax(fmin(reached, span), trains->call_class.train.max_interval_s);
@@ -71,20 +69,6 @@ static double walked_score(const struct trains *trains, uint32_t n)
     return fmax(score[NARROW], score[WIDE]) - log(2);
 }
 
-/* The rate of noise pulses that compete with one of this snr. Its level speaks against noise, of which ever
- * fewer reach it, as far as the spread of a train's own levels lets it: the rate per dB there, over that
- * spread; or all of the noise's pulses where that is less. */
-static double competing_noise(const struct trains *trains, double snr)
-{
-    const double step_db = 0.25;
-    double rate = trains_noise_rate(trains, snr);
-    double next = trains_noise_rate(trains, snr * units_power_ratio(step_db));
-    if (next < 1e-12) /* far below RATE_FLOOR, and near where the tail underflows */
-        return 0;
-    double per_db = log(rate / next) / step_db;
-    return fmin(trains->all_noise, rate * per_db * LEVEL_DEVIATION_DB * sqrt(2 * M_PI));
-}
-
 /* The rate at which stray pulses compete with one of the chain's n: those that noise does not explain. A
  * chain picked out of many strays has taken some of them for its own, which is made good: the share that
  * strays have among all; and since they are counted over a short time, one more and a standard deviation are
@@ -103,11 +87,12 @@ static double competing_strays(const struct trains *trains, const struct node *n
 bool trains_are_certain(struct trains *trains, uint32_t n)
 {
     double ratio = walked_score(trains, n), first = 0;
+    double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
     struct competitors found = gather_competitors(trains, n);
     for (uint32_t i = 0; i < n; i++) {
         const struct node *node = trains_node(trains, trains->members[i]);
-        double rate =
-            competing_strays(trains, node, &found, n) + competing_noise(trains, node->snr) + RATE_FLOOR;
+        double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, LEVEL_DEVIATION_DB);
+        double rate = competing_strays(trains, node, &found, n) + noise + RATE_FLOOR;
         if (i + 1 < n)
             ratio -= log(rate);
         else

@@ -19,6 +19,7 @@
 #define LEVEL_STEP_DB 3
 #define RATE_FLOOR 0.01   /* stray pulses a second that are expected everywhere; a judgement, no source */
 #define RATE_INTERVALS 20 /* longest intervals over which the rate of stray pulses is counted */
+#define UNLIKE -2.0       /* pulse_shape_likeness; a judgement, no source */
 #define HIDDEN UINT32_MAX
 
 /* A train is either steady or free in its rhythm; a chain is scored as both. */
@@ -38,11 +39,13 @@ struct link {
     double gain;        /* what the last pair added, at best */
     double score[2];    /* sum of ln densities, the rate of stray pulses left out, for either spread */
     double ln_rates;    /* sum of ln of the common rate, to compare chains by */
-    double rank;        /* the better score less ln_rates: which chains are kept */
+    double alike;       /* sum of the likenesses above 0 */
+    double rank;        /* the better score and `alike` less ln_rates: which chains are kept */
 };
 
 struct node {
-    double time_s, frame, level_db, snr, energy;
+    struct pulse pulse;
+    double time_s, level_db;
     uint32_t owner; /* train that has claimed it; 0 none, HIDDEN */
     uint32_t n_links;
     struct link links[LINKS];
@@ -75,7 +78,7 @@ struct trains {
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
-    double competing[RING], sorted[TRAINS_MAX_MEMBERS];
+    double competing[RING], sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
 };
 
@@ -94,6 +97,12 @@ static inline bool trains_remember(const struct trains *trains, uint64_t number)
     return number + RING > trains->n_pulses;
 }
 
+/* False when two pulses look too different to be of one animal: neither can take the other's place. */
+static inline bool trains_may_be_one(const struct node *a, const struct node *b)
+{
+    return pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape) > UNLIKE;
+}
+
 /* Remembers a pulse and finds the chains that reach it, and how often pulses of its level come.
  * trains_chains.c */
 void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t *rejections);
@@ -110,6 +119,5 @@ int trains_level_index(const struct node *node);
 bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link);
 /* Whether the chain in members[0..n) is more than chance. Uses competing[]. */
 bool trains_are_certain(struct trains *trains, uint32_t n);
-int trains_compare_doubles(const void *a, const void *b);
 
 #endif

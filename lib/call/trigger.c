@@ -15,23 +15,32 @@
 #define FROZEN_LENGTHS 8     /* a background stands still for so many longest pulses, then goes on */
 #define GUARD_DEVIATIONS 2.5 /* benefit of the doubt for a guard band of which noise is all we see */
 #define GUARD_MARGIN 2       /* slots: the two filters are not equally late */
+#define MOST_BLOCK_SLOTS 64  /* of the bank */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
 enum trigger_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 
+/* A band that must be quieter than the pulse. */
+struct guard {
+    bool used;
+    uint32_t window, after; /* slots in all, and after the peak */
+    double ratio;
+    struct window_median median;
+    float settle[WINDOW_MEDIAN_SETTLE];
+};
+
 struct trigger {
     struct trigger_setup setup;
-    uint32_t window;                    /* slots */
-    uint32_t max_open;                  /* slots */
-    uint32_t guard_window, guard_after; /* slots in all, and after the peak */
+    uint32_t window;   /* slots */
+    uint32_t max_open; /* slots */
+    struct guard guards[TRIGGER_GUARDS];
+    uint32_t guard_window, guard_after; /* of the longest */
     double threshold;                   /* ratio of a window's power to the background */
-    double guard_ratio;
     struct noise_table noise;
-    double echo_frames;
-    bool has_guard;
+    double echo_frames, tail_frames;
 
     enum trigger_state state;
-    struct window_median band, guard;
-    float settle[2][WINDOW_MEDIAN_SETTLE];
+    struct window_median band;
+    float settle[WINDOW_MEDIAN_SETTLE];
     uint32_t n_settled, frozen_slots;
     uint32_t run; /* windows since one lay on the other side of the median */
     bool run_above;
@@ -40,9 +49,12 @@ struct trigger {
     int64_t start, peak, fallen;
     double start_power, peak_power, low_power; /* window means */
     struct pulse held;
+    double held_slot; /* its arrival, from the start of the bank's first block */
     double held_first;
     bool holds, held_rejected;
     float *sums; /* [block_slots] window means of the block */
+    struct pulse_shaper *shaper;
+    uint64_t block_slot; /* slots before the block that the bank holds */
 };
 
 static uint32_t window_slots(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
@@ -58,24 +70,58 @@ static uint32_t open_slots(const struct call_class *call_class, double rate_hz, 
 }
 
 /* A guard band answers no faster than its width lets it: its window is at least two of its response times. */
-static uint32_t guard_slots(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
+static uint32_t guard_slots(const struct call_class *call_class, double width_hz, double rate_hz,
+                            uint32_t slot_frames)
 {
-    const struct train_shape *shape = &call_class->train;
-    if (shape->guard_high_hz <= 0)
+    if (width_hz <= 0)
         return 0;
-    double seconds = 2 / (shape->guard_high_hz - shape->guard_low_hz);
-    return (uint32_t)ceil(fmax(shape->pulse_s, seconds) * rate_hz / slot_frames) + 2 * GUARD_MARGIN;
+    double seconds = fmax(call_class->train.pulse_s, 2 / width_hz);
+    return (uint32_t)ceil(seconds * rate_hz / slot_frames) + 2 * GUARD_MARGIN;
 }
 
 uint32_t trigger_get_history(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
 {
-    return open_slots(call_class, rate_hz, slot_frames) + 2 * window_slots(call_class, rate_hz, slot_frames) +
-           2 * GUARD_MARGIN + 8;
+    /* From where the first of a pulse's echoes could be known to where the last is: then it is looked at. */
+    double echo = trigger_get_echo(call_class) * rate_hz / slot_frames;
+    const struct train_shape *shape = &call_class->train;
+    double width = shape->guard_high_hz - shape->guard_low_hz,
+           upper = shape->upper_high_hz - shape->upper_low_hz;
+    uint32_t guard = guard_slots(call_class, width, rate_hz, slot_frames) +
+                     guard_slots(call_class, upper, rate_hz, slot_frames);
+    double reach = fmax(PULSE_SHAPE_REACH_S * rate_hz / slot_frames, PULSE_SHAPE_LAGS);
+    return 2 * open_slots(call_class, rate_hz, slot_frames) +
+           8 * window_slots(call_class, rate_hz, slot_frames) + guard + (uint32_t)ceil(echo + reach) +
+           MOST_BLOCK_SLOTS * 2 + 8;
 }
 
 double trigger_get_echo(const struct call_class *call_class)
 {
-    return fmin(MAX_ECHO_S, call_class->train.min_interval_s / 4);
+    double stated = call_class->train.echo_s;
+    return stated > 0 ? stated : fmin(MAX_ECHO_S, call_class->train.min_interval_s / 4);
+}
+
+/* Fills the guard that the setup names. */
+static enum status fill_guard(struct trigger *trigger, uint32_t g, double step)
+{
+    const struct trigger_setup *setup = &trigger->setup;
+    const struct train_shape *shape = &setup->call_class->train;
+    struct guard *guard = &trigger->guards[g];
+    guard->used = setup->guards[g] != TRIGGER_NO_GUARD;
+    if (!guard->used)
+        return STATUS_OK;
+    double width =
+        g == 0 ? shape->guard_high_hz - shape->guard_low_hz : shape->upper_high_hz - shape->upper_low_hz;
+    guard->ratio = units_power_ratio(-(g == 0 ? shape->min_guard_db : shape->min_upper_db));
+    guard->window = guard_slots(setup->call_class, width, setup->rate_hz, setup->slot_frames);
+    guard->after = guard->window > trigger->window ? (guard->window - trigger->window + 1) / 2 : 0;
+    struct window_statistics statistics = {.freedom = 1, .skewness = 1};
+    enum status status = bands_get_statistics(setup->bands, setup->guards[g], guard->window, &statistics);
+    guard->median = window_median_of(statistics.freedom, step);
+    if (guard->window > trigger->guard_window)
+        trigger->guard_window = guard->window;
+    if (guard->after > trigger->guard_after)
+        trigger->guard_after = guard->after;
+    return status;
 }
 
 enum status trigger_create(const struct trigger_setup *setup, struct trigger **out)
@@ -88,23 +134,20 @@ enum status trigger_create(const struct trigger_setup *setup, struct trigger **o
     trigger->window = window_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
     trigger->max_open = open_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
     trigger->threshold = 1 + units_power_ratio(shape->min_snr_db);
-    trigger->has_guard = shape->guard_high_hz > 0;
-    trigger->guard_ratio = units_power_ratio(-shape->min_guard_db);
-    trigger->guard_window = guard_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
-    trigger->guard_after =
-        trigger->guard_window > trigger->window ? (trigger->guard_window - trigger->window + 1) / 2 : 0;
-    struct window_statistics band = {.freedom = 1, .skewness = 1}, guard = band;
+    struct window_statistics band = {.freedom = 1, .skewness = 1};
     enum status status = bands_get_statistics(setup->bands, setup->band, trigger->window, &band);
-    if (status == STATUS_OK && trigger->has_guard)
-        status = bands_get_statistics(setup->bands, setup->guard, trigger->guard_window, &guard);
     noise_table_fill(&band, shape->pulse_s, &trigger->noise);
     /* A step of 0.002 at 0.1 ms keeps the median within 0.1 dB and lets it follow 87 dB/s; longer windows
        step more, since there are fewer. */
     double step = fmin(0.05, 0.002 * fmax(1, sqrt(shape->pulse_s / 1e-4)));
     trigger->band = window_median_of(band.freedom, step);
-    trigger->guard = window_median_of(guard.freedom, step);
+    for (uint32_t g = 0; g < TRIGGER_GUARDS && status == STATUS_OK; g++)
+        status = fill_guard(trigger, g, step);
     trigger->echo_frames = trigger_get_echo(setup->call_class) * setup->rate_hz * setup->frames_per_frame;
+    trigger->tail_frames = shape->tail_s * setup->rate_hz * setup->frames_per_frame;
     trigger->sums = calloc(setup->block_slots, sizeof *trigger->sums);
+    if (status == STATUS_OK)
+        status = pulse_shaper_create(setup->call_class, setup->rate_hz, setup->slot_frames, &trigger->shaper);
     if (status != STATUS_OK || !trigger->sums) {
         trigger_destroy(trigger);
         return STATUS_NO_MEMORY;
@@ -120,9 +163,12 @@ void trigger_reset(struct trigger *trigger)
     trigger->n_settled = trigger->frozen_slots = trigger->run = 0;
     trigger->n_slots = 0;
     trigger->energy = 0;
+    trigger->block_slot = 0;
+    trigger->held = (struct pulse){.frame = -INFINITY};
     trigger->holds = false;
     window_median_reset(&trigger->band);
-    window_median_reset(&trigger->guard);
+    for (uint32_t g = 0; g < TRIGGER_GUARDS; g++)
+        window_median_reset(&trigger->guards[g].median);
 }
 
 static double sum_slots(const float *power, uint32_t n)
@@ -145,28 +191,47 @@ static double window_power(const float *power, int64_t last, uint32_t window)
     return sum_slots(power + last + 1 - (int64_t)window, window) / window;
 }
 
-/* Once a window: every window counts once in the background. */
-static void learn(struct trigger *trigger, int64_t slot, const float *band, const float *guard)
+static const float *guard_power(const struct trigger *trigger, uint32_t g)
 {
-    double guard_power = trigger->has_guard ? window_power(guard, slot, trigger->guard_window) : 0;
+    return bands_get_power(trigger->setup.bands, trigger->setup.guards[g]);
+}
+
+/* Takes one of the first windows; gives whether they are enough. */
+static bool settle_on(struct trigger *trigger, int64_t slot, const float *band)
+{
+    if (trigger->n_slots + (uint64_t)slot < 4 * trigger->window + 2 * trigger->guard_window)
+        return false; /* the filters are still filling */
+    trigger->settle[trigger->n_settled] = (float)window_power(band, slot, trigger->window);
+    for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
+        struct guard *guard = &trigger->guards[g];
+        if (guard->used)
+            guard->settle[trigger->n_settled] =
+                (float)window_power(guard_power(trigger, g), slot, guard->window);
+    }
+    return ++trigger->n_settled == WINDOW_MEDIAN_SETTLE;
+}
+
+/* Once a window: every window counts once in the background. */
+static void learn(struct trigger *trigger, int64_t slot, const float *band)
+{
     if (trigger->state == SETTLING) {
-        if (trigger->n_slots + (uint64_t)slot < 4 * trigger->window + 2 * trigger->guard_window)
-            return; /* the filters are still filling */
-        trigger->settle[0][trigger->n_settled] = (float)window_power(band, slot, trigger->window);
-        trigger->settle[1][trigger->n_settled] = (float)guard_power;
-        if (++trigger->n_settled < WINDOW_MEDIAN_SETTLE)
+        if (!settle_on(trigger, slot, band))
             return;
-        window_median_settle(&trigger->band, trigger->settle[0]);
-        if (trigger->has_guard)
-            window_median_settle(&trigger->guard, trigger->settle[1]);
+        window_median_settle(&trigger->band, trigger->settle);
+        for (uint32_t g = 0; g < TRIGGER_GUARDS; g++)
+            if (trigger->guards[g].used)
+                window_median_settle(&trigger->guards[g].median, trigger->guards[g].settle);
         trigger->state = IDLE;
         return;
     }
     if (trigger->state != IDLE && trigger->frozen_slots < FROZEN_LENGTHS * trigger->max_open)
         return;
     bool above = window_median_follow(&trigger->band, trigger->sums[slot]);
-    if (trigger->has_guard)
-        window_median_follow(&trigger->guard, guard_power);
+    for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
+        struct guard *guard = &trigger->guards[g];
+        if (guard->used)
+            window_median_follow(&guard->median, window_power(guard_power(trigger, g), slot, guard->window));
+    }
     trigger->run = trigger->run * (above == trigger->run_above) + 1;
     trigger->run_above = above;
     if (trigger->run >= RUN) {
@@ -175,26 +240,51 @@ static void learn(struct trigger *trigger, int64_t slot, const float *band, cons
     }
 }
 
+/* Looks at the sound around the held pulse, as far as the bank still or already has it. */
+static void look_at_held(struct trigger *trigger)
+{
+    const struct trigger_setup *setup = &trigger->setup;
+    const int64_t per_slot = setup->slot_frames, history = setup->history_slots;
+    double from_block = trigger->held_slot - (double)trigger->block_slot; /* slots */
+    int64_t slot = (int64_t)floor(from_block);
+    int64_t frame = llround(from_block * setup->slot_frames - bands_get_delay(setup->bands, setup->band));
+    struct pulse_sound sound = {
+        .samples = bands_get_samples(setup->bands) + frame,
+        .samples_before = history * per_slot + frame,
+        .samples_after = setup->block_slots * per_slot - frame,
+        .power = bands_get_power(setup->bands, setup->band) + slot,
+        .slots_before = history + slot,
+        .slots_after = setup->block_slots - slot,
+        .background_pa2 = trigger->band.mean_pa2,
+    };
+    pulse_shaper_get(trigger->shaper, &sound, &trigger->held.shape);
+}
+
 static void give_held(struct trigger *trigger, const struct pulse_sink *sink)
 {
-    if (trigger->holds && !trigger->held_rejected)
+    if (trigger->holds && !trigger->held_rejected) {
+        look_at_held(trigger);
         sink->take(sink->context, &trigger->held);
+    }
     trigger->holds = false;
 }
 
 /* Ties a pulse to the one before or starts the next. What was rejected ties its echoes too: they are no more
  * the class's than it is. */
-static void emit(struct trigger *trigger, const struct pulse *pulse, bool rejected,
+static void emit(struct trigger *trigger, const struct pulse *pulse, double slot, bool rejected,
                  const struct pulse_sink *sink)
 {
     bool echo = trigger->holds && pulse->frame - trigger->held_first < trigger->echo_frames;
-    if (echo && pulse->snr <= trigger->held.snr)
+    bool late_echo =
+        pulse->snr * FALL < trigger->held.snr && pulse->frame - trigger->held.frame < trigger->tail_frames;
+    if (late_echo || (echo && pulse->snr <= trigger->held.snr))
         return;
     if (!echo) {
         give_held(trigger, sink);
         trigger->held_first = pulse->frame;
     }
     trigger->held = *pulse;
+    trigger->held_slot = slot;
     trigger->held_rejected = rejected;
     trigger->holds = true;
 }
@@ -218,16 +308,21 @@ double trigger_get_known(const struct trigger *trigger)
     return trigger->holds ? trigger->held.frame : open_frame(trigger);
 }
 
-/* False when the guard band holds too much energy around the pulse, beyond what its noise explains. */
-static bool guard_is_quiet(const struct trigger *trigger, const float *guard)
+/* False when a guard band holds too much energy around the pulse, beyond what its noise explains. */
+static bool guards_are_quiet(const struct trigger *trigger)
 {
-    if (!trigger->has_guard)
-        return true;
-    double n = trigger->guard_window, background = trigger->guard.mean_pa2;
-    double power = window_power(guard, trigger->peak + trigger->guard_after, trigger->guard_window);
-    double doubt = GUARD_DEVIATIONS * background * trigger->guard.deviation;
     double pulse = (trigger->peak_power - trigger->band.mean_pa2) * trigger->window;
-    return (power - background) * n <= pulse * trigger->guard_ratio + doubt * n;
+    for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
+        const struct guard *guard = &trigger->guards[g];
+        if (!guard->used)
+            continue;
+        double n = guard->window, background = guard->median.mean_pa2;
+        double power = window_power(guard_power(trigger, g), trigger->peak + guard->after, guard->window);
+        double doubt = GUARD_DEVIATIONS * background * guard->median.deviation;
+        if ((power - background) * n > pulse * guard->ratio + doubt * n)
+            return false;
+    }
+    return true;
 }
 
 /* Centroid of the energy above the background, in slots from the start of the block. */
@@ -250,24 +345,24 @@ static double energy_until(const struct trigger *trigger, const float *band, int
     return trigger->energy + sum * trigger->setup.slot_frames * trigger->setup.frames_per_frame;
 }
 
-static void complete(struct trigger *trigger, int64_t slot, const float *band, const float *guard,
-                     const struct pulse_sink *sink, uint64_t *rejections)
+static void complete(struct trigger *trigger, int64_t slot, const float *band, const struct pulse_sink *sink,
+                     uint64_t *rejections)
 {
     const struct trigger_setup *setup = &trigger->setup;
     double seconds = (double)(trigger->fallen - trigger->start - (int64_t)trigger->window) *
                      setup->slot_frames / setup->rate_hz;
     bool too_long = seconds > setup->call_class->train.max_pulse_s;
-    bool broadband = !too_long && !guard_is_quiet(trigger, guard);
+    bool broadband = !too_long && !guards_are_quiet(trigger);
     rejections[REJECT_TOO_LONG] += too_long;
     rejections[REJECT_BROADBAND] += broadband;
-    double frames = ((double)trigger->n_slots + arrival_slot(trigger, band, slot)) * setup->slot_frames -
-                    bands_get_delay(setup->bands, setup->band);
+    double arrival = (double)trigger->n_slots + arrival_slot(trigger, band, slot);
+    double frames = arrival * setup->slot_frames - bands_get_delay(setup->bands, setup->band);
     struct pulse pulse = {
         .frame = frames * setup->frames_per_frame - setup->delay_frames,
         .snr = (trigger->peak_power - trigger->band.mean_pa2) / trigger->band.mean_pa2,
         .energy = energy_until(trigger, band, trigger->peak),
     };
-    emit(trigger, &pulse, too_long || broadband, sink);
+    emit(trigger, &pulse, arrival, too_long || broadband, sink);
 }
 
 static void open_at(struct trigger *trigger, int64_t slot)
@@ -278,8 +373,8 @@ static void open_at(struct trigger *trigger, int64_t slot)
     trigger->start_power = trigger->peak_power = trigger->sums[slot];
 }
 
-static void step(struct trigger *trigger, int64_t slot, const float *band, const float *guard,
-                 const struct pulse_sink *sink, uint64_t *rejections)
+static void step(struct trigger *trigger, int64_t slot, const float *band, const struct pulse_sink *sink,
+                 uint64_t *rejections)
 {
     double power = trigger->sums[slot], limit = trigger->threshold * trigger->band.mean_pa2;
     if (trigger->state == IDLE) {
@@ -301,7 +396,7 @@ static void step(struct trigger *trigger, int64_t slot, const float *band, const
             trigger->fallen = slot;
         }
         if (trigger->state == WAITING && slot >= trigger->peak + trigger->guard_after) {
-            complete(trigger, slot, band, guard, sink, rejections);
+            complete(trigger, slot, band, sink, rejections);
             trigger->state = TAIL;
             trigger->low_power = power;
         }
@@ -342,19 +437,19 @@ void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64
 {
     const struct trigger_setup *setup = &trigger->setup;
     const float *band = bands_get_power(setup->bands, setup->band);
-    const float *guard = trigger->has_guard ? bands_get_power(setup->bands, setup->guard) : NULL;
     int64_t n = setup->block_slots;
+    trigger->block_slot = trigger->n_slots;
     float greatest = sum_windows(trigger, band);
     /* Until the background has moved by as much as it can in a block, no window can pass. */
     bool quiet = trigger->state == IDLE && greatest < 0.8 * trigger->threshold * trigger->band.mean_pa2;
     int64_t next = (int64_t)((trigger->window - trigger->n_slots % trigger->window) % trigger->window);
     for (int64_t slot = quiet ? next : 0; slot < n; slot += quiet ? trigger->window : 1) {
         if (!quiet && trigger->state != SETTLING) {
-            step(trigger, slot, band, guard, sink, rejections);
+            step(trigger, slot, band, sink, rejections);
             trigger->frozen_slots += trigger->state != IDLE;
         }
         if (slot == next) {
-            learn(trigger, slot, band, guard);
+            learn(trigger, slot, band);
             next += trigger->window;
         }
     }
@@ -385,6 +480,7 @@ void trigger_destroy(struct trigger *trigger)
 {
     if (!trigger)
         return;
+    pulse_shaper_destroy(trigger->shaper);
     free(trigger->sums);
     free(trigger);
 }

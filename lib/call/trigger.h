@@ -14,6 +14,7 @@
 #include "call/bands.h"
 #include "call/catalogue.h"
 #include "call/found.h"
+#include "call/pulse_shape.h"
 #include <stdint.h>
 
 struct pulse {
@@ -21,6 +22,7 @@ struct pulse {
     double snr;    /* ratio: mean square over pulse_s where it is greatest, less the background, over the
                       background's mean square in the band */
     double energy; /* the band's energy up to the arrival since the last reset, Pa2 times input frames */
+    struct pulse_shape shape;
 };
 
 struct pulse_sink {
@@ -28,12 +30,17 @@ struct pulse_sink {
     void *context;
 };
 
+#define TRIGGER_GUARDS 2
+#define TRIGGER_NO_GUARD UINT32_MAX
+
 struct trigger_setup {
     const struct call_class *call_class; /* borrowed */
     const struct bands *bands;           /* borrowed */
-    uint32_t band, guard;                /* of the bank; guard is ignored where the class has none */
+    uint32_t band;                       /* of the bank */
+    uint32_t guards[TRIGGER_GUARDS];     /* of the bank: guard and upper band; TRIGGER_NO_GUARD where none */
     double rate_hz;                      /* of the bank */
-    uint32_t slot_frames, block_slots;   /* of the bank; block_slots a multiple of 8 */
+    uint32_t slot_frames, block_slots;   /* of the bank; block_slots a multiple of 8, at most 64 */
+    uint32_t history_slots;              /* of the bank: trigger_get_history or more */
     double frames_per_frame;             /* input frames per frame of the bank (its decimation) */
     double delay_frames;                 /* input frames by which the bank's input is late */
 };

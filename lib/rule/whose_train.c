@@ -1,5 +1,6 @@
 /* One train of impulses: its interval, its level, and how well an impulse fits it. */
 #include "base/time.h"
+#include "base/median.h"
 #include "rule/whose.h"
 #include <math.h>
 #include <stdlib.h>
@@ -29,20 +30,6 @@
 #define MAD_TO_SIGMA 1.4826  /* of a normal distribution */
 #define MEAN_TO_SIGMA 1.2533 /* of absolute deviations, likewise: root of pi / 2 */
 #define IN_RHYTHM 3.5
-
-static int by_value(const void *a, const void *b)
-{
-    double x = *(const double *)a, y = *(const double *)b;
-    return (x > y) - (x < y);
-}
-
-static double median(double *values, uint32_t n)
-{
-    if (n == 0)
-        return NAN;
-    qsort(values, n, sizeof *values, by_value);
-    return n % 2 ? values[n / 2] : 0.5 * (values[n / 2 - 1] + values[n / 2]);
-}
 
 static uint32_t kept(const struct whose_train *train)
 {
@@ -74,7 +61,7 @@ static uint32_t folded_intervals(const struct whose_train *train, double out[WHO
     double sorted[WHOSE_KEPT];
     uint32_t n = intervals(train, out);
     memcpy(sorted, out, n * sizeof sorted[0]);
-    qsort(sorted, n, sizeof sorted[0], by_value);
+    qsort(sorted, n, sizeof sorted[0], median_compare);
     double one = n ? sorted[n / 3] : NAN;
     for (int parts = 2; n >= 5 && parts <= 3 && out_of_step(out, n, one) > IN_STEP; parts++)
         if (sorted[n / 3] / parts >= SHORTEST_INTERVAL_S &&
@@ -90,7 +77,7 @@ static uint32_t folded_intervals(const struct whose_train *train, double out[WHO
 static double last_interval_s(const struct whose_train *train)
 {
     double steps[WHOSE_KEPT];
-    return median(steps, folded_intervals(train, steps));
+    return median_of(steps, folded_intervals(train, steps));
 }
 
 double whose_train_interval_s(const struct whose_train *train)
@@ -126,7 +113,7 @@ static double interval_spread(const struct whose_train *train, double interval_s
         return train->slow_spread < LEAST_SPREAD ? LEAST_SPREAD : train->slow_spread;
     for (uint32_t i = 0; i < n; i++)
         steps[i] = fabs(steps[i] - interval_s);
-    double spread = MAD_TO_SIGMA * median(steps, n) / interval_s;
+    double spread = MAD_TO_SIGMA * median_of(steps, n) / interval_s;
     return spread < LEAST_SPREAD ? LEAST_SPREAD : spread > MOST_SPREAD ? MOST_SPREAD : spread;
 }
 
@@ -142,7 +129,7 @@ static uint32_t levels(const struct whose_train *train, double out[WHOSE_KEPT])
 double whose_train_level_db(const struct whose_train *train)
 {
     double all[WHOSE_KEPT];
-    return median(all, levels(train, all));
+    return median_of(all, levels(train, all));
 }
 
 double whose_train_expected_db(const struct whose_train *train)
@@ -163,7 +150,7 @@ static double level_likelihood(const struct whose_train *train, double level_db)
         return 1 / ANY_LEVEL_DB;
     for (uint32_t i = 0; i < n; i++)
         all[i] = fabs(all[i] - middle);
-    double sigma = MAD_TO_SIGMA * median(all, n), off = level_db - expected;
+    double sigma = MAD_TO_SIGMA * median_of(all, n), off = level_db - expected;
     sigma = n < 4 ? FEW_SPREAD_DB : sigma < LEAST_SPREAD_DB ? LEAST_SPREAD_DB : sigma;
     sigma = sigma > MOST_SPREAD_DB ? MOST_SPREAD_DB : sigma;
     /* Another's energy steps too, but what suddenly is louder than another's is rather ours. */

@@ -13,12 +13,14 @@ static enum status create_parts(struct finder *finder, const struct call_class *
     uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * rate_hz / 6));
     struct band_edges edges[2] = {{call_class->low_hz, call_class->high_hz},
                                   {shape->guard_low_hz, shape->guard_high_hz}};
-    struct trigger_setup setup = {.call_class = call_class,
-                                  .guard = 1,
-                                  .rate_hz = rate_hz,
-                                  .slot_frames = slot,
-                                  .block_slots = BLOCK_SLOTS,
-                                  .frames_per_frame = 1};
+    struct trigger_setup setup = {
+        .call_class = call_class,
+        .guards = {shape->guard_high_hz > 0 ? 1 : TRIGGER_NO_GUARD, TRIGGER_NO_GUARD},
+        .history_slots = trigger_get_history(call_class, rate_hz, slot),
+        .rate_hz = rate_hz,
+        .slot_frames = slot,
+        .block_slots = BLOCK_SLOTS,
+        .frames_per_frame = 1};
     enum status status = bands_create(rate_hz, edges, shape->guard_high_hz > 0 ? 2 : 1, slot, BLOCK_SLOTS,
                                       trigger_get_history(call_class, rate_hz, slot), &finder->bands);
     setup.bands = finder->bands;

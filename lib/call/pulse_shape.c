@@ -1,0 +1,333 @@
+/* What one pulse looks like. */
+#include "call/pulse_shape.h"
+#include "base/units.h"
+#include <fftw3.h>
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define PULSE_LENGTHS 6.0 /* of the segment, over the class's pulse_s */
+#define TAPER 0.25        /* of the segment, at either end */
+#define MOST_FRAMES 4096
+#define BAND_BINS 16 /* at least, in the class's band */
+#define LENGTH_RATIO 0.1
+#define SWEEP_RATIO 0.158 /* 8 dB */
+#define WIDE_RATIO 4.0    /* a band so wide is divided in equal ratios, a narrower one in equal steps */
+#define MOST_DOUBT_DB 20.0
+#define NOISE_ROOT 0.9   /* mean of the square root of a slot's noise power over the root of its mean */
+#define NOISE_SPREAD 0.4 /* and its standard deviation; both between those of 1 and 4 degrees of freedom */
+/* Judgements, no source: how much neighbouring clicks of one animal differ, how much more those of two; parts
+ * of a spectrum that lie side by side are not independent; profiles of one animal correlate by more than
+ * ECHO_MIDDLE. */
+#define ALIKE_DB 3.0F
+#define APART_DB 6.0F
+#define PARTS_WEIGHT 0.5F
+#define ECHO_WEIGHT 6.0F
+#define ECHO_MIDDLE 0.5F
+
+struct pulse_shaper {
+    double rate_hz, low_hz, high_hz;
+    uint32_t n, segment;                       /* of the transform, and of the sound in it */
+    uint32_t edge_bins[PULSE_SHAPE_BANDS + 1]; /* part b is [edge b, edge b + 1) */
+    double window_energy;
+    double pulse_slots;
+    uint32_t reach, first_lag; /* slots */
+    double lag_step;           /* slots */
+    float *window, *frame;
+    fftwf_complex *bins, *analytic;
+    fftwf_plan forward, backward;
+    float *envelope; /* [3 * reach] */
+};
+
+static void find_edges(struct pulse_shaper *shaper)
+{
+    double ratio = shaper->high_hz / shaper->low_hz;
+    for (uint32_t b = 0; b <= PULSE_SHAPE_BANDS; b++) {
+        double part = (double)b / PULSE_SHAPE_BANDS;
+        double hz = ratio > WIDE_RATIO ? shaper->low_hz * pow(ratio, part)
+                                       : shaper->low_hz + part * (shaper->high_hz - shaper->low_hz);
+        uint32_t bin = (uint32_t)lround(hz * shaper->n / shaper->rate_hz);
+        shaper->edge_bins[b] = bin < shaper->n / 2 ? bin : shaper->n / 2;
+    }
+}
+
+static void find_window(struct pulse_shaper *shaper)
+{
+    uint32_t taper = (uint32_t)fmax(1, TAPER * shaper->segment);
+    shaper->window_energy = 0;
+    for (uint32_t i = 0; i < shaper->segment; i++) {
+        uint32_t from_end = i < shaper->segment - 1 - i ? i : shaper->segment - 1 - i;
+        double w = from_end >= taper ? 1 : (1 - cos(M_PI * (from_end + 0.5) / taper)) / 2;
+        shaper->window[i] = (float)w;
+        shaper->window_energy += w * w;
+    }
+}
+
+enum status pulse_shaper_create(const struct call_class *call_class, double rate_hz, uint32_t slot_frames,
+                                struct pulse_shaper **out)
+{
+    struct pulse_shaper *shaper = calloc(1, sizeof *shaper);
+    if (!shaper)
+        return STATUS_NO_MEMORY;
+    double pulse_s = call_class->train.pulse_s, slot_s = slot_frames / rate_hz;
+    shaper->rate_hz = rate_hz;
+    shaper->low_hz = call_class->low_hz;
+    shaper->high_hz = call_class->high_hz;
+    shaper->segment = (uint32_t)fmin(MOST_FRAMES, fmax(16, round(PULSE_LENGTHS * pulse_s * rate_hz)));
+    double need = fmax(shaper->segment, BAND_BINS * rate_hz / (call_class->high_hz - call_class->low_hz));
+    shaper->n = 32;
+    while (shaper->n < need && shaper->n < MOST_FRAMES)
+        shaper->n *= 2;
+    shaper->pulse_slots = fmax(1, pulse_s / slot_s);
+    double reach_s = fmin(PULSE_SHAPE_REACH_S, call_class->train.min_interval_s / 2);
+    shaper->first_lag = (uint32_t)ceil(3 * shaper->pulse_slots);
+    shaper->reach = (uint32_t)fmax(reach_s / slot_s, shaper->first_lag + PULSE_SHAPE_LAGS);
+    shaper->lag_step = (double)(shaper->reach - shaper->first_lag) / PULSE_SHAPE_LAGS;
+    shaper->window = calloc(shaper->segment, sizeof(float));
+    shaper->envelope = calloc(3 * (size_t)shaper->reach, sizeof(float));
+    shaper->frame = fftwf_alloc_real(shaper->n);
+    shaper->bins = fftwf_alloc_complex(shaper->n / 2 + 1);
+    shaper->analytic = fftwf_alloc_complex(shaper->n);
+    if (!shaper->window || !shaper->envelope || !shaper->frame || !shaper->bins || !shaper->analytic) {
+        pulse_shaper_destroy(shaper);
+        return STATUS_NO_MEMORY;
+    }
+    shaper->forward = fftwf_plan_dft_r2c_1d((int)shaper->n, shaper->frame, shaper->bins, FFTW_ESTIMATE);
+    shaper->backward =
+        fftwf_plan_dft_1d((int)shaper->n, shaper->analytic, shaper->analytic, FFTW_BACKWARD, FFTW_ESTIMATE);
+    if (!shaper->forward || !shaper->backward) {
+        pulse_shaper_destroy(shaper);
+        return STATUS_NO_MEMORY;
+    }
+    find_edges(shaper);
+    find_window(shaper);
+    *out = shaper;
+    return STATUS_OK;
+}
+
+uint32_t pulse_shaper_frames(const struct pulse_shaper *shaper)
+{
+    return shaper->segment / 2 + 1;
+}
+
+uint32_t pulse_shaper_slots(const struct pulse_shaper *shaper)
+{
+    return shaper->reach;
+}
+
+/* The segment around the arrival, its transform in bins[], and its class's part, analytic, in analytic[]. */
+static void transform(struct pulse_shaper *shaper, const struct pulse_sound *sound)
+{
+    memset(shaper->frame, 0, shaper->n * sizeof(float));
+    int64_t half = shaper->segment / 2;
+    for (int64_t i = 0; i < (int64_t)shaper->segment; i++)
+        if (i - half >= -sound->samples_before && i - half < sound->samples_after)
+            shaper->frame[i] = sound->samples[i - half] * shaper->window[i];
+    fftwf_execute(shaper->forward);
+    memset(shaper->analytic, 0, shaper->n * sizeof *shaper->analytic);
+    for (uint32_t k = shaper->edge_bins[0]; k < shaper->edge_bins[PULSE_SHAPE_BANDS]; k++)
+        memcpy(shaper->analytic[k], shaper->bins[k], sizeof shaper->bins[k]);
+    fftwf_execute(shaper->backward);
+}
+
+static double power_of(const fftwf_complex value)
+{
+    return (double)value[0] * value[0] + (double)value[1] * value[1];
+}
+
+/* Noise that the background explains, of one bin. */
+static double noise_bin(const struct pulse_shaper *shaper, double background_pa2)
+{
+    double density = background_pa2 / (shaper->high_hz - shaper->low_hz);
+    return density * shaper->rate_hz / 2 * shaper->window_energy;
+}
+
+static void find_spectrum(const struct pulse_shaper *shaper, double noise, struct pulse_shape *out)
+{
+    double bin_hz = shaper->rate_hz / shaper->n, sum = 0, moment = 0, square = 0, greatest = -1;
+    for (uint32_t k = shaper->edge_bins[0]; k < shaper->edge_bins[PULSE_SHAPE_BANDS]; k++) {
+        double power = power_of(shaper->bins[k]), excess = fmax(0, power - 2 * noise);
+        sum += excess;
+        moment += excess * k;
+        square += excess * k * k;
+        if (power > greatest) {
+            greatest = power;
+            out->peak_hz = (float)(k * bin_hz);
+        }
+    }
+    double centre = sum > 0 ? moment / sum : out->peak_hz / bin_hz;
+    out->centroid_hz = (float)(centre * bin_hz);
+    out->bandwidth_hz = (float)(sum > 0 ? sqrt(fmax(0, square / sum - centre * centre)) * bin_hz : 0);
+}
+
+static void find_parts(const struct pulse_shaper *shaper, double noise, struct pulse_shape *out)
+{
+    double energy[PULSE_SHAPE_BANDS], total = 0;
+    for (uint32_t b = 0; b < PULSE_SHAPE_BANDS; b++) {
+        energy[b] = 0;
+        for (uint32_t k = shaper->edge_bins[b]; k < shaper->edge_bins[b + 1]; k++)
+            energy[b] += power_of(shaper->bins[k]);
+        total += energy[b];
+    }
+    for (uint32_t b = 0; b < PULSE_SHAPE_BANDS; b++) {
+        double bins = (double)shaper->edge_bins[b + 1] - shaper->edge_bins[b];
+        double free = fmax(1, bins * shaper->segment / shaper->n), noise_energy = bins * noise;
+        double spread = noise_energy / sqrt(free), found = fmax(energy[b] - noise_energy, spread);
+        found = fmax(found, 1e-4 * total); /* the window's leakage */
+        double doubt = sqrt(spread * spread + 2 * found * noise_energy / free) / fmax(found, 1e-300);
+        out->bands_db[b] = (float)units_power_db(fmax(found, 1e-300) / fmax(total, 1e-300));
+        out->doubt_db[b] = (float)fmin(MOST_DOUBT_DB, bins > 0 ? 10 / M_LN10 * doubt : MOST_DOUBT_DB);
+    }
+}
+
+/* Places before and after `at` where the power falls below a level, between samples. */
+static void find_extent(const struct pulse_shaper *shaper, uint32_t at, double level, double *out_from,
+                        double *out_to)
+{
+    uint32_t from = at, to = at;
+    while (from > 0 && power_of(shaper->analytic[from - 1]) >= level)
+        from--;
+    while (to + 1 < shaper->segment && power_of(shaper->analytic[to + 1]) >= level)
+        to++;
+    double in = power_of(shaper->analytic[from]), out = from > 0 ? power_of(shaper->analytic[from - 1]) : 0;
+    *out_from = from - fmin(1, (in - level) / fmax(in - out, 1e-300));
+    in = power_of(shaper->analytic[to]);
+    out = to + 1 < shaper->segment ? power_of(shaper->analytic[to + 1]) : 0;
+    *out_to = to + fmin(1, (in - level) / fmax(in - out, 1e-300));
+}
+
+/* Slope of the instantaneous frequency, by least squares weighted with the power. */
+static double slope_between(const struct pulse_shaper *shaper, double from, double to)
+{
+    double w = 0, wt = 0, wf = 0, wtt = 0, wtf = 0;
+    for (uint32_t i = (uint32_t)ceil(from); i + 1 <= to; i++) {
+        const float *z = shaper->analytic[i], *next = shaper->analytic[i + 1];
+        double real = (double)next[0] * z[0] + (double)next[1] * z[1];
+        double imaginary = (double)next[1] * z[0] - (double)next[0] * z[1];
+        double weight = hypot(real, imaginary), t = (i + 0.5) / shaper->rate_hz;
+        double hz = atan2(imaginary, real) / (2 * M_PI) * shaper->rate_hz;
+        if (hz < 0)
+            hz += shaper->rate_hz;
+        w += weight;
+        wt += weight * t;
+        wf += weight * hz;
+        wtt += weight * t * t;
+        wtf += weight * t * hz;
+    }
+    double spread = w * wtt - wt * wt;
+    return spread > 1e-12 * w * wtt ? (w * wtf - wt * wf) / spread : 0;
+}
+
+static void find_time_course(const struct pulse_shaper *shaper, struct pulse_shape *out)
+{
+    uint32_t at = shaper->segment / 4;
+    for (uint32_t i = at; i < shaper->segment - shaper->segment / 4; i++)
+        if (power_of(shaper->analytic[i]) > power_of(shaper->analytic[at]))
+            at = i;
+    double greatest = power_of(shaper->analytic[at]), from, to;
+    find_extent(shaper, at, LENGTH_RATIO * greatest, &from, &to);
+    out->length_s = (float)((to - from) / shaper->rate_hz);
+    find_extent(shaper, at, SWEEP_RATIO * greatest, &from, &to);
+    out->sweep_hz_s = (float)slope_between(shaper, from, to);
+}
+
+static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out)
+{
+    int64_t first = -(int64_t)shaper->reach, n = 3 * (int64_t)shaper->reach;
+    double noise = sqrt(sound->background_pa2), energy = 0;
+    for (int64_t i = 0; i < n; i++) {
+        int64_t slot = first + i;
+        bool there = slot >= -sound->slots_before && slot < sound->slots_after;
+        shaper->envelope[i] = there ? (float)(sqrt((double)sound->power[slot]) - NOISE_ROOT * noise) : 0;
+        energy += (double)shaper->envelope[i] * shaper->envelope[i];
+    }
+    double spread = NOISE_SPREAD * noise, variance = spread * spread;
+    double one = (2 * energy * variance + (double)n * variance * variance) / fmax(energy * energy, 1e-300);
+    out->echoes_doubt = (float)sqrt(one * shaper->lag_step / (shaper->pulse_slots * shaper->pulse_slots));
+    for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++) {
+        double sum = 0;
+        int64_t from = shaper->first_lag + (int64_t)(l * shaper->lag_step);
+        int64_t to = shaper->first_lag + (int64_t)((l + 1) * shaper->lag_step);
+        for (int64_t lag = from; lag < to; lag++)
+            for (int64_t i = 0; i + lag < n; i++)
+                sum += shaper->envelope[i] * shaper->envelope[i + lag];
+        out->echoes[l] = (float)(sum / fmax(energy, 1e-300) / shaper->pulse_slots);
+    }
+}
+
+void pulse_shaper_get(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out)
+{
+    double noise = noise_bin(shaper, sound->background_pa2);
+    transform(shaper, sound);
+    find_spectrum(shaper, noise, out);
+    find_parts(shaper, noise, out);
+    find_time_course(shaper, out);
+    find_echoes(shaper, sound, out);
+    pulse_shape_centre(out);
+}
+
+void pulse_shape_centre(struct pulse_shape *shape)
+{
+    float mean = 0, energy = 0;
+    for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++)
+        mean += shape->echoes[l] / PULSE_SHAPE_LAGS;
+    for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++) {
+        shape->echoes[l] -= mean;
+        energy += shape->echoes[l] * shape->echoes[l];
+    }
+    shape->echoes_energy = energy;
+}
+
+void pulse_shaper_destroy(struct pulse_shaper *shaper)
+{
+    if (!shaper)
+        return;
+    if (shaper->forward)
+        fftwf_destroy_plan(shaper->forward);
+    if (shaper->backward)
+        fftwf_destroy_plan(shaper->backward);
+    free(shaper->window);
+    free(shaper->envelope);
+    fftwf_free(shaper->frame);
+    fftwf_free(shaper->bins);
+    fftwf_free(shaper->analytic);
+    free(shaper);
+}
+
+/* ln(1 + x) for x of 0 to 4 within 0.5 % (Pade): compared are every two pulses of a stretch. */
+static inline float ln_one_more(float x)
+{
+    return x * (60 + x * (60 + 11 * x)) / (60 + x * (90 + x * (36 + 3 * x)));
+}
+
+/* Of the spectra: the log-likelihood ratio of each part's difference, normal with one spread or the wider
+ * one. */
+static float likeness_of_parts(const struct pulse_shape *a, const struct pulse_shape *b)
+{
+    const float wider = APART_DB * APART_DB;
+    float sum = 0;
+    for (uint32_t i = 0; i < PULSE_SHAPE_BANDS; i++) {
+        float alike = ALIKE_DB * ALIKE_DB + a->doubt_db[i] * a->doubt_db[i] + b->doubt_db[i] * b->doubt_db[i];
+        float difference = a->bands_db[i] - b->bands_db[i], ratio = wider / alike;
+        sum += ln_one_more(ratio) - difference * difference * ratio / (alike + wider);
+    }
+    return PARTS_WEIGHT / 2 * sum;
+}
+
+/* Of what follows: the correlation of the two profiles, as far as they are more than noise. */
+static float likeness_of_echoes(const struct pulse_shape *a, const struct pulse_shape *b)
+{
+    float aa = a->echoes_energy, bb = b->echoes_energy, ab = 0;
+    for (uint32_t i = 0; i < PULSE_SHAPE_LAGS; i++)
+        ab += a->echoes[i] * b->echoes[i];
+    float more_a = aa - PULSE_SHAPE_LAGS * a->echoes_doubt * a->echoes_doubt;
+    float more_b = bb - PULSE_SHAPE_LAGS * b->echoes_doubt * b->echoes_doubt;
+    if (more_a <= 0 || more_b <= 0)
+        return 0;
+    return ECHO_WEIGHT * sqrtf(more_a * more_b) * (ab - ECHO_MIDDLE * sqrtf(aa * bb)) / (aa * bb);
+}
+
+double pulse_shape_likeness(const struct pulse_shape *a, const struct pulse_shape *b)
+{
+    return (double)likeness_of_parts(a, b) + likeness_of_echoes(a, b);
+}
