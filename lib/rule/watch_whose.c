@@ -85,33 +85,82 @@ static size_t place_of(const struct heard *heard)
     return whose_place(heard->stream, heard->channel);
 }
 
-/* The same hammer on another channel: of each blow the impulse nearest to it, where most blows have one. */
+#define DELAY_NS (BLOW_SAME_NS / 20) /* a step of the delays between two channels */
+#define DELAYS 40u
+#define NEAR_NS (5 * DELAY_NS) /* one blow's delay is off the usual by at most this */
+
+/* Two channels' delay of one hammer: the named blows of one, and what the other heard about then. */
+struct pairing {
+    struct watch *watch;
+    size_t place;
+    uint64_t from; /* what is earlier is too early for the blow, and for those after it */
+    uint32_t votes[DELAYS];
+};
+
+/* The other channel's impulse that is nearest to a delay after a blow, within a limit; each has a vote for
+ * its own delay. */
+static struct heard *nearest(struct pairing *pairing, const struct heard *blow, int64_t delay_ns,
+                             int64_t limit_ns)
+{
+    struct watch *watch = pairing->watch;
+    struct heard *found = NULL;
+    while (pairing->from < watch->n_heard &&
+           whose_heard(watch, pairing->from)->time_ns < blow->time_ns - AROUND_NS)
+        pairing->from++;
+    for (uint64_t t = pairing->from; t < watch->n_heard; t++) {
+        struct heard *heard = whose_heard(watch, t);
+        int64_t after_ns = heard->struck_ns - blow->struck_ns;
+        if (heard->time_ns > blow->time_ns + AROUND_NS)
+            break;
+        if (place_of(heard) != pairing->place || !same_blow(after_ns, 0))
+            continue;
+        pairing->votes[(after_ns + BLOW_SAME_NS) / DELAY_NS]++;
+        if (llabs(after_ns - delay_ns) < limit_ns) {
+            limit_ns = llabs(after_ns - delay_ns);
+            found = heard;
+        }
+    }
+    return found;
+}
+
+/* The delay that most have; what our own hammer strikes meanwhile has any. */
+static int64_t usual_delay_ns(const struct pairing *pairing)
+{
+    uint32_t best = 0, most = 0;
+    for (uint32_t i = 0; i + 1 < DELAYS; i++)
+        if (pairing->votes[i] + pairing->votes[i + 1] > most) {
+            most = pairing->votes[i] + pairing->votes[i + 1];
+            best = i;
+        }
+    return (int64_t)(best + 1) * DELAY_NS - BLOW_SAME_NS;
+}
+
+/* The same hammer on another channel: of each blow the impulse at its usual delay, where most blows have one.
+ * The delay is found in three steps: to the step of votes, by the mean about it, and then gone by. */
 static void name_elsewhere(struct watch *watch, size_t named_place, size_t place)
 {
-    uint32_t n_blows = 0, n_found = 0;
-    uint64_t from = whose_oldest(watch);
-    for (int pass = 0; pass < 2; pass++)
+    int64_t delay_ns = 0, limit_ns = BLOW_SAME_NS;
+    for (int pass = 0; pass < 3; pass++) {
+        struct pairing pairing = {.watch = watch, .place = place, .from = whose_oldest(watch)};
+        int64_t n_blows = 0, n_found = 0, sum_ns = 0;
         for (uint64_t token = whose_oldest(watch); token < watch->n_heard; token++) {
             const struct heard *blow = whose_heard(watch, token);
-            struct heard *nearest = NULL;
             if (!blow->named || place_of(blow) != named_place)
                 continue;
-            while (from < token && whose_heard(watch, from)->time_ns < blow->time_ns - AROUND_NS)
-                from++;
-            for (uint64_t t = from; t < watch->n_heard; t++) {
-                struct heard *heard = whose_heard(watch, t);
-                if (heard->time_ns > blow->time_ns + AROUND_NS)
-                    break;
-                if (place_of(heard) == place && same_blow(heard->struck_ns, blow->struck_ns) &&
-                    (!nearest ||
-                     llabs(heard->struck_ns - blow->struck_ns) < llabs(nearest->struck_ns - blow->struck_ns)))
-                    nearest = heard;
-            }
-            n_blows += pass == 0;
-            n_found += pass == 0 && nearest;
-            if (pass == 1 && nearest && 2 * n_found > n_blows)
-                nearest->named = true;
+            struct heard *found = nearest(&pairing, blow, delay_ns, limit_ns);
+            n_blows++;
+            if (!found)
+                continue;
+            n_found++;
+            sum_ns += found->struck_ns - blow->struck_ns;
+            if (pass == 2)
+                found->named = true;
         }
+        if (2 * n_found <= n_blows)
+            return;
+        delay_ns = pass == 0 ? usual_delay_ns(&pairing) : sum_ns / n_found;
+        limit_ns = NEAR_NS;
+    }
 }
 
 /* Tells the channel's trains. */

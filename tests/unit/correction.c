@@ -14,6 +14,9 @@
 #include <stdlib.h>
 
 #define MOST 4000
+#define REFERENCE_M 750 /* of channel 1 from our source */
+#define BESIDE_M 600    /* of channel 2 */
+#define SPEED_M_S 1480
 
 static struct permit permit;
 static struct criteria criteria;
@@ -27,8 +30,9 @@ struct sea {
     struct watch *watch;
     struct tally *tally;
     uint64_t counters[EVENT_NOTE + 1];
-    struct exposure_outcome cumulative; /* the last */
-    struct source_outcome source;
+    struct exposure_outcome cumulative;   /* the last */
+    struct source_outcome source, beside; /* of the reference, channel 1, and of channel 2 */
+    uint32_t n_of_channel[2];             /* impulses that were corrected */
     uint32_t n_passed, n_answered, n_without, n_corrected, n_following;
     char passed[FLOW_ID_SIZE]; /* the finding's id */
     struct finding_outcome answered;
@@ -41,7 +45,7 @@ static void take_sums(void *context, const struct outcome *outcome)
 {
     struct sea *sea = context;
     if (outcome->kind == OUTCOME_SOURCE)
-        sea->source = outcome->as.source;
+        *(outcome->as.source.channel == 1 ? &sea->source : &sea->beside) = outcome->as.source;
     if (outcome->kind == OUTCOME_EXPOSURE && strcmp(outcome->as.exposure.metric, "SEL cumulative") == 0 &&
         strcmp(outcome->as.exposure.weighting, "none") == 0)
         sea->cumulative = outcome->as.exposure;
@@ -65,6 +69,7 @@ static void take(void *context, const struct outcome *outcome)
             assert_int_equal(outcome->as.correction.n_following, sea->n_following - 1);
         sea->n_following = outcome->as.correction.n_following;
         sea->n_corrected += outcome->as.correction.n;
+        sea->n_of_channel[outcome->as.correction.channel - 1] += outcome->as.correction.n;
     }
     if (outcome->kind == OUTCOME_FINDING && strcmp(outcome->as.finding.code, "note without effect") == 0)
         sea->n_without++;
@@ -96,17 +101,20 @@ static void begin(struct sea *sea)
                                       .act_evidence = 2,
                                       .evidence_decay_s = 60,
                                       .sighting_log_spread = 0.2,
-                                      .silence_s = 60};
+                                      .silence_s = 60,
+                                      .range_m[0] = {REFERENCE_M, BESIDE_M},
+                                      .sound_speed_m_s = SPEED_M_S};
     struct tally_setup sums = {.criteria = &criteria,
                                .n_streams = 1,
                                .shape = {.form = SOURCE_LINE},
                                .loss_n_db = 15,
                                .loss_n_spread_db = 1,
                                .level_spread_db = 1,
+                               .sound_speed_m_s = SPEED_M_S,
                                .zone_edge_m = NAN};
     sums.water = absorption_of(10, 35, 10, 8);
     for (uint32_t c = 0; c < 2; c++) {
-        sums.range_m[0][c] = 750;
+        sums.range_m[0][c] = setup.range_m[0][c];
         sums.role[0][c] = ROLE_MEASURE;
     }
     *sea = (struct sea){0};
@@ -152,21 +160,28 @@ static uint32_t strike(struct random *random, double from_s, double to_s, double
     return n;
 }
 
-static void hear(struct sea *sea, const struct blow *blow)
+static void hear_on(struct sea *sea, const struct blow *blow, uint32_t channel, double arrives_s,
+                    double sel_db)
 {
     struct event event = {.kind = EVENT_IMPULSE, .stream = 1, .known_ns = time_from_s(blow->time_s + 0.5)};
-    event.as.impulse = (struct impulse){.channel = 1,
-                                        .time_ns = time_from_s(blow->time_s),
-                                        .sel_db = blow->sel_db,
-                                        .peak_db = blow->sel_db + 20,
-                                        .peak_to_peak_db = blow->sel_db + 25,
-                                        .rms90_db = blow->sel_db + 10,
+    event.as.impulse = (struct impulse){.channel = channel,
+                                        .beside = channel != 1,
+                                        .time_ns = time_from_s(arrives_s),
+                                        .sel_db = sel_db,
+                                        .peak_db = sel_db + 20,
+                                        .peak_to_peak_db = sel_db + 25,
+                                        .rms90_db = sel_db + 10,
                                         .t90_s = 0.1,
                                         .positive_impulse_pa_s = NAN,
                                         .n_bands = 34};
     for (uint32_t b = 0; b < 34; b++)
-        event.as.impulse.band_sel_db[b] = b == 10 ? blow->sel_db : NAN;
+        event.as.impulse.band_sel_db[b] = b == 10 ? sel_db : NAN;
     push(sea, event);
+}
+
+static void hear(struct sea *sea, const struct blow *blow)
+{
+    hear_on(sea, blow, 1, blow->time_s, blow->sel_db);
     *(blow->ours ? &sea->ours_impulse : &sea->other_impulse) = sea->counters[EVENT_IMPULSE];
     double energy = pow(10, round(100 * blow->sel_db) / 1000);
     sea->all_energy += energy;
@@ -285,6 +300,46 @@ static void since_is_kept_to(void **state)
     end(&sea);
 }
 
+/* Channel 2 hears ours 0.1 s before the reference does, and the neighbour, which lies abeam, when it does.
+ * Whichever of the two channels the note names an impulse of, the neighbour is taken out on both.
+ */
+static void the_train_is_taken_out_on_both_channels(void **state)
+{
+    (void)state;
+    static struct blow blows[MOST];
+    const double lead_s = (double)(REFERENCE_M - BESIDE_M) / SPEED_M_S;
+    for (int named = 1; named <= 2; named++) {
+        struct sea sea;
+        uint32_t n = two_hammers(5, blows), n_theirs = 0;
+        uint64_t other_beside = 0;
+        begin(&sea);
+        for (uint32_t i = 0; i < n && blows[i].time_s < 900; i++) {
+            const struct blow *blow = &blows[i];
+            hear(&sea, blow);
+            hear_on(&sea, blow, 2, blow->time_s + (blow->ours ? -lead_s : 0),
+                    blow->sel_db + (blow->ours ? 1.5 : -0.2));
+            if (!blow->ours)
+                other_beside = sea.counters[EVENT_IMPULSE];
+            n_theirs += !blow->ours;
+        }
+        finish(&sea, 900.5);
+        assert_true(sea.beside.n_impulses > sea.n_ours + 100); /* it counts what the reference says is ours */
+        say_whose(&sea, 900.5, named == 1 ? sea.other_impulse : other_beside, "other", NULL);
+        printf("# figure named on channel %d: of %u blows of the neighbour %u and %u are corrected, %.3f dB "
+               "off\n",
+               named, n_theirs, sea.n_of_channel[0], sea.n_of_channel[1],
+               sea.cumulative.level_db - db(sea.ours_energy));
+        for (int c = 0; c < 2; c++)
+            assert_near(sea.n_of_channel[c], n_theirs, 0.05 * n_theirs);
+        assert_true(fabs(sea.cumulative.level_db - db(sea.ours_energy)) < 0.1);
+        assert_near(sea.source.n_impulses, sea.n_ours, 0.02 * sea.n_ours);
+        assert_near(sea.beside.n_impulses, sea.n_ours, 0.02 * sea.n_ours);
+        assert_near(sea.beside.sel_db - sea.source.sel_db, 1.5, 0.1);
+        assert_int_equal(sea.n_without, 0);
+        end(&sea);
+    }
+}
+
 int main(void)
 {
     struct problems problems = {0};
@@ -298,6 +353,7 @@ int main(void)
         cmocka_unit_test(a_louder_neighbour_counts_until_it_is_named),
         cmocka_unit_test(there_and_back_is_where_it_was),
         cmocka_unit_test(since_is_kept_to),
+        cmocka_unit_test(the_train_is_taken_out_on_both_channels),
     };
     return cmocka_run_group_tests_name("correction", tests, NULL, NULL);
 }
