@@ -144,15 +144,24 @@ static void answer(const struct answering *answering, struct tally_said *said, e
     *said = (struct tally_said){ZONE_NOTHING, ""};
 }
 
-static enum zone_grade zone_now(const struct answering *answering, uint32_t c)
+/* How far beyond the zone a criterion is met by now: by ours alone, and with the others. */
+static enum zone_grade zone_now(const struct answering *answering, uint32_t c, enum zone_grade *with_others)
 {
-    const struct tally *tally = answering->tally;
+    struct tally *tally = answering->tally;
+    struct exposure *sums = tally->sums[answering->i].exposure;
+    const struct criterion *criterion = &tally->setup.criteria->items[c];
     struct exposure_outcome exposure;
     struct zone_distance distance;
-    if (tally_fill_exposure(tally->sums[answering->i].exposure, &tally->setup.criteria->items[c], c,
-                            tally->setup.zone_edge_m, answering->watch_ns, &exposure) != STATUS_OK ||
+    struct together_reach reach;
+    struct finding_outcome finding;
+    *with_others = ZONE_NOTHING;
+    if (tally_fill_exposure(sums, criterion, c, tally->setup.zone_edge_m, answering->watch_ns, &exposure) !=
+            STATUS_OK ||
         !tally_zone_distance(tally, answering->i, &exposure, &distance))
         return ZONE_NOTHING;
+    if (tally_fill_together(tally->together, sums, criterion, c, answering->watch_ns, &exposure, &reach) &&
+        tally_together_finding(criterion, &reach, &tally->setup, tally->job, ZONE_NOTHING, &finding))
+        *with_others = zone_grade_from_text(finding.grade);
     return zone_check_distance(&distance);
 }
 
@@ -168,9 +177,11 @@ static void answer_all(const struct answering *answering)
                TALLY_LIMIT_PASSED, clause);
     }
     for (uint32_t c = 0; c < criteria->n; c++)
-        if (sums->said[c].grade >= ZONE_INDICATIVE) {
+        if (sums->said[c].grade >= ZONE_INDICATIVE || sums->said_together[c].grade >= ZONE_INDICATIVE) {
+            enum zone_grade with_others, alone = zone_now(answering, c, &with_others);
             tally_clause(&criteria->items[c], clause);
-            answer(answering, &sums->said[c], zone_now(answering, c), TALLY_ZONE_TOO_SMALL, clause);
+            answer(answering, &sums->said[c], alone, TALLY_ZONE_TOO_SMALL, clause);
+            answer(answering, &sums->said_together[c], with_others, TALLY_ZONE_TOO_SMALL_TOGETHER, clause);
         }
     bool falls = quieting_falls(&sums->quieting, NULL);
     answer(answering, &sums->falling, falls ? sums->falling.grade : ZONE_NOTHING, TALLY_QUIETING_FALLS, "");

@@ -6,8 +6,6 @@
 #include <stdio.h>
 #include <string.h>
 
-#define WITH_OTHERS "zone too small with others"
-
 enum status tally_together_create(const struct tally_setup *setup, const struct exposure_setup *exposure,
                                   struct together **out)
 {
@@ -57,7 +55,7 @@ bool tally_together_finding(const struct criterion *criterion, const struct toge
         return false;
     tally_distance_text(reach->ours_m, NAN, NAN, met);
     tally_distance_text(reach->ours_low_m, NAN, NAN, least);
-    snprintf(out->code, sizeof out->code, "%s", WITH_OTHERS);
+    snprintf(out->code, sizeof out->code, "%s", TALLY_ZONE_TOO_SMALL_TOGETHER);
     snprintf(
         out->detail, sizeof out->detail,
         "with %u other source%s, of set levels, the criterion is met at %s (90 %%: at least %s), beyond the "
@@ -70,5 +68,6 @@ bool tally_is_together_finding(const struct criterion *criterion, const struct f
 {
     struct finding_outcome alone = *finding;
     snprintf(alone.code, sizeof alone.code, "%s", TALLY_ZONE_TOO_SMALL);
-    return strcmp(finding->code, WITH_OTHERS) == 0 && tally_is_zone_finding(criterion, &alone);
+    return strcmp(finding->code, TALLY_ZONE_TOO_SMALL_TOGETHER) == 0 &&
+           tally_is_zone_finding(criterion, &alone);
 }

@@ -10,6 +10,8 @@
 #include <stdbool.h>
 #include <stdint.h>
 
+#define TALLY_ZONE_TOO_SMALL_TOGETHER "zone too small with others"
+
 /* The others of a setup; *out stays as it is where there are none. */
 enum status tally_together_create(const struct tally_setup *setup, const struct exposure_setup *exposure,
                                   struct together **out);
