@@ -8,7 +8,8 @@
 
 #include <stddef.h>
 
-#define VIEWS_FORMAT 6                  /* PRAGMA user_version: rises when the table or a view changes */
+/* PRAGMA user_version: rises by one from a release to the next in which the table or a view has changed. */
+#define VIEWS_FORMAT 2
 #define VIEWS_APPLICATION_ID 0x48555348 /* PRAGMA application_id: "HUSH" */
 
 /* The id of an entry as an SQL expression over `body`; the index entry_id is on this very expression. */
