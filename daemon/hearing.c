@@ -163,28 +163,74 @@ static void take_call(struct hearing_view *hearing, const struct outcome *outcom
     flow_id(outcome->run, outcome->stream, "call", outcome->counter, hearing->calls[0].id);
 }
 
-/* The soft start's curve: the greatest SEL and peak of ours in each step. */
-static void take_curve(struct hearing_view *hearing, const struct impulse *impulse)
+static void insert_level(float *levels, uint32_t n, uint32_t at, float level)
 {
-    int64_t step = impulse->time_ns / (BOARD_CURVE_STEP_S * TIME_NS_PER_S);
-    uint32_t n = hearing->n_curve;
-    if (impulse->whose != IMPULSE_OURS || impulse->relative || !(impulse->sel_db > -1000))
-        return;
-    if (n > 0 && hearing->curve_step[n - 1] == step) {
-        hearing->curve_sel_db[n - 1] = fmaxf((float)impulse->sel_db, hearing->curve_sel_db[n - 1]);
-        hearing->curve_peak_db[n - 1] = fmaxf((float)impulse->peak_db, hearing->curve_peak_db[n - 1]);
+    memmove(levels + at + 1, levels + at, (n - at) * sizeof *levels);
+    levels[at] = level;
+}
+
+/* The soft start's curve: the greatest SEL and peak of ours in each step, in order. */
+static void add_to_curve(struct hearing_view *hearing, const struct hearing_heard *heard)
+{
+    int64_t *steps = hearing->curve_step;
+    uint32_t at = hearing->n_curve;
+    while (at > 0 && steps[at - 1] > heard->step)
+        at--; /* streams become known a little out of order */
+    if (at > 0 && steps[at - 1] == heard->step) {
+        hearing->curve_sel_db[at - 1] = fmaxf(heard->sel_db, hearing->curve_sel_db[at - 1]);
+        hearing->curve_peak_db[at - 1] = fmaxf(heard->peak_db, hearing->curve_peak_db[at - 1]);
         return;
     }
-    if (n == BOARD_CURVE_STEPS) {
-        n--;
-        memmove(hearing->curve_step, hearing->curve_step + 1, n * sizeof hearing->curve_step[0]);
-        memmove(hearing->curve_sel_db, hearing->curve_sel_db + 1, n * sizeof hearing->curve_sel_db[0]);
-        memmove(hearing->curve_peak_db, hearing->curve_peak_db + 1, n * sizeof hearing->curve_peak_db[0]);
+    if (hearing->n_curve == BOARD_CURVE_STEPS) {
+        if (at == 0)
+            return; /* older than all that is shown */
+        at--;
+        hearing->n_curve--;
+        memmove(steps, steps + 1, hearing->n_curve * sizeof *steps);
+        memmove(hearing->curve_sel_db, hearing->curve_sel_db + 1, hearing->n_curve * sizeof(float));
+        memmove(hearing->curve_peak_db, hearing->curve_peak_db + 1, hearing->n_curve * sizeof(float));
     }
-    hearing->curve_step[n] = step;
-    hearing->curve_sel_db[n] = (float)impulse->sel_db;
-    hearing->curve_peak_db[n] = (float)impulse->peak_db;
-    hearing->n_curve = n + 1;
+    memmove(steps + at + 1, steps + at, (hearing->n_curve - at) * sizeof *steps);
+    steps[at] = heard->step;
+    insert_level(hearing->curve_sel_db, hearing->n_curve, at, heard->sel_db);
+    insert_level(hearing->curve_peak_db, hearing->n_curve, at, heard->peak_db);
+    hearing->n_curve++;
+}
+
+static void take_curve(struct hearing_view *hearing, const struct outcome *outcome,
+                       const struct impulse *impulse)
+{
+    struct hearing_heard heard = {.step = impulse->time_ns / (BOARD_CURVE_STEP_S * TIME_NS_PER_S),
+                                  .counter = outcome->counter,
+                                  .run = outcome->run,
+                                  .stream = outcome->stream,
+                                  .sel_db = (float)impulse->sel_db,
+                                  .peak_db = (float)impulse->peak_db,
+                                  .ours = impulse->whose == IMPULSE_OURS};
+    if (impulse->relative || !(impulse->sel_db > -1000))
+        return;
+    hearing->heard[hearing->n_heard++ % BOARD_MAX_HEARD] = heard;
+    if (heard.ours)
+        add_to_curve(hearing, &heard);
+}
+
+static uint64_t oldest_heard(const struct hearing_view *hearing)
+{
+    return hearing->n_heard > BOARD_MAX_HEARD ? hearing->n_heard - BOARD_MAX_HEARD : 0;
+}
+
+/* The curve again, from the first step of which everything is kept; what is older stays as it is. */
+static void draw_curve_again(struct hearing_view *hearing)
+{
+    uint64_t oldest = oldest_heard(hearing);
+    int64_t first = oldest > 0 ? hearing->heard[oldest % BOARD_MAX_HEARD].step + 1 : INT64_MIN;
+    while (hearing->n_curve > 0 && hearing->curve_step[hearing->n_curve - 1] >= first)
+        hearing->n_curve--;
+    for (uint64_t i = oldest; i < hearing->n_heard; i++) {
+        const struct hearing_heard *heard = &hearing->heard[i % BOARD_MAX_HEARD];
+        if (heard->ours && heard->step >= first)
+            add_to_curve(hearing, heard);
+    }
 }
 
 static void take_impulse(struct hearing_view *hearing, const struct outcome *outcome,
@@ -196,7 +242,7 @@ static void take_impulse(struct hearing_view *hearing, const struct outcome *out
         push_front(hearing->impulses, hearing->n_impulses, BOARD_MAX_IMPULSES, sizeof hearing->impulses[0]);
     hearing->impulses[0] = (struct hearing_impulse){.stream = event->stream, .impulse = event->as.impulse};
     flow_id(outcome->run, outcome->stream, "impulse", outcome->counter, hearing->impulses[0].id);
-    take_curve(hearing, &event->as.impulse);
+    take_curve(hearing, outcome, &event->as.impulse);
 }
 
 static void take_exposure(struct hearing_view *hearing, const struct exposure_outcome *exposure)
@@ -226,15 +272,28 @@ static void take_source(struct hearing_view *hearing, const struct source_outcom
         hearing->n_sources++;
 }
 
+/* Counters rise in a correction, and among the impulses of a stream. */
 static void take_correction(struct hearing_view *hearing, const struct correction_outcome *correction)
 {
     char id[FLOW_ID_SIZE];
+    uint32_t next = 0;
+    for (uint64_t i = oldest_heard(hearing); i < hearing->n_heard; i++) {
+        struct hearing_heard *heard = &hearing->heard[i % BOARD_MAX_HEARD];
+        if (heard->run != correction->run || heard->stream != correction->stream)
+            continue;
+        while (next < correction->n && correction->counters[next] < heard->counter)
+            next++;
+        if (next < correction->n && correction->counters[next] == heard->counter)
+            heard->ours = correction->whose == IMPULSE_OURS;
+    }
     for (uint32_t i = 0; i < correction->n; i++) {
         flow_id(correction->run, correction->stream, "impulse", correction->counters[i], id);
         for (uint32_t k = 0; k < hearing->n_impulses; k++)
             if (strcmp(hearing->impulses[k].id, id) == 0)
                 hearing->impulses[k].impulse.whose = correction->whose;
     }
+    if (correction->n_following == 0)
+        draw_curve_again(hearing);
 }
 
 void hearing_take(struct hearing_view *hearing, const struct outcome *outcome)

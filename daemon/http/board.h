@@ -25,6 +25,7 @@
 #define BOARD_MAX_SOURCES 32  /* channels that measure impulses */
 #define BOARD_CURVE_STEPS 360 /* an hour */
 #define BOARD_CURVE_STEP_S 10
+#define BOARD_MAX_HEARD 7200 /* impulses of which the curve can be made again: an hour of 120 a minute */
 #define BOARD_MAX_UNRECORDED 8
 #define BOARD_MAX_SOUNDS 32    /* classes that are no animal's */
 #define BOARD_SOUND_STEP_S 600 /* an hour is the step at hand and the five before it */
@@ -86,6 +87,15 @@ struct hearing_impulse {
     struct impulse impulse;
 };
 
+/* What the curve needs of an impulse, should a person say that it is another's. */
+struct hearing_heard {
+    int64_t step;
+    uint64_t counter;
+    uint32_t run, stream;
+    float sel_db, peak_db;
+    bool ours;
+};
+
 struct hearing_unheard {
     uint32_t stream;
     struct unheard unheard;
@@ -100,7 +110,7 @@ struct hearing_sound {
     uint64_t n, n_against;              /* of this run: sounds; calls that they took back */
 };
 
-/* What the daemon knows beside the watch. Lists are newest first. About 200 kB: not for the stack. */
+/* What the daemon knows beside the watch. Lists are newest first. About 500 kB: not for the stack. */
 struct hearing_view {
     int64_t unix_at_zero_ns; /* UTC of watch time 0 by the clock map in force */
     uint32_t n_streams;
@@ -118,6 +128,8 @@ struct hearing_view {
     uint32_t n_curve; /* the loudest of our impulses in each step of the last hour, oldest first */
     int64_t curve_step[BOARD_CURVE_STEPS]; /* watch time / BOARD_CURVE_STEP_S */
     float curve_sel_db[BOARD_CURVE_STEPS], curve_peak_db[BOARD_CURVE_STEPS];
+    uint64_t n_heard; /* all so far; the last of them are kept, the n-th at n % BOARD_MAX_HEARD */
+    struct hearing_heard heard[BOARD_MAX_HEARD];
     uint32_t n_exposures; /* the last word on each criterion */
     struct exposure_outcome exposures[BOARD_MAX_EXPOSURES];
     uint32_t n_sources; /* the last of each stream */
