@@ -12,6 +12,7 @@
 #define TOLERANCE 0.1  /* of a step; its root with the steps that were missed */
 #define TRIED 24       /* impulses on either side whose distance is tried as a step */
 #define TRIED_STEPS 16 /* how far a trial goes on either side */
+#define PARTS 3        /* a distance may be this many steps, where those between were missed */
 #define MISSED 8       /* steps in a row: then the train is over */
 #define EARLIER 64     /* impulses become known nearly in the order of their times */
 
@@ -89,15 +90,34 @@ static struct way start(const struct watch *watch, uint64_t token, int direction
                         .token = token};
 }
 
-static uint32_t try_step(const struct watch *watch, uint64_t token, double step_ns)
+/* How many are met, going no farther than a span on either side. */
+static uint32_t try_step(const struct watch *watch, uint64_t token, double step_ns, double span_ns)
 {
     uint32_t n = 0;
     for (int direction = -1; direction <= 1; direction += 2) {
         struct way way = start(watch, token, direction, step_ns);
-        for (uint32_t i = 0; i < TRIED_STEPS && go(&way, 1); i++)
+        int64_t start_ns = way.last_ns;
+        uint32_t most = isfinite(span_ns) ? PARTS * TRIED_STEPS : TRIED_STEPS;
+        for (uint32_t i = 0; i < most && go(&way, 1) && (double)llabs(way.last_ns - start_ns) <= span_ns; i++)
             n++;
     }
     return n;
+}
+
+/* The distance to the nearest one that was heard may be several steps. A part of it must meet a quarter more
+ * over the same span: more than a few that fall into its steps by chance. */
+static double split_step(const struct watch *watch, uint64_t token, double step_ns)
+{
+    double span_ns = (TRIED_STEPS + 0.5) * step_ns, best_ns = step_ns;
+    uint32_t most = step_ns > 0 ? try_step(watch, token, step_ns, span_ns) : 0;
+    for (uint32_t parts = 2; parts <= PARTS && step_ns / parts >= SHORTEST_NS; parts++) {
+        uint32_t n = try_step(watch, token, step_ns / parts, span_ns);
+        if (4 * n > 5 * most) {
+            most = n;
+            best_ns = step_ns / parts;
+        }
+    }
+    return best_ns;
 }
 
 /* 0 where there is none. */
@@ -118,14 +138,14 @@ static double find_step(const struct watch *watch, uint64_t token)
                 !level_fits(heard->level_db, way.level_db))
                 continue;
             tried++;
-            uint32_t n = try_step(watch, token, (double)step_ns);
+            uint32_t n = try_step(watch, token, (double)step_ns, INFINITY);
             if (n > most) {
                 most = n;
                 best_ns = (double)step_ns;
             }
         }
     }
-    return best_ns;
+    return split_step(watch, token, best_ns);
 }
 
 void whose_name_train(struct watch *watch, uint64_t token)

@@ -300,6 +300,30 @@ static void since_is_kept_to(void **state)
     end(&sea);
 }
 
+/* The impulses next to the one that is named were not heard, on either side, nor every ninth: the train
+ * goes by its own step all the same, and not by twice that. */
+static void what_was_missed_beside_the_named_one_is_stepped_over(void **state)
+{
+    (void)state;
+    static struct blow blows[MOST];
+    struct sea sea;
+    uint32_t n = two_hammers(6, blows), heard = 0;
+    uint64_t named = 0;
+    begin(&sea);
+    for (uint32_t i = 0, theirs = 0; i < n && blows[i].time_s < 900; i++) {
+        theirs += !blows[i].ours;
+        if (!blows[i].ours && (theirs == 99 || theirs == 101 || theirs % 9 == 0))
+            continue;
+        hear(&sea, &blows[i]);
+        heard += !blows[i].ours;
+        if (!blows[i].ours && theirs == 100)
+            named = sea.other_impulse;
+    }
+    say_whose(&sea, 901, named, "other", NULL);
+    assert_near(sea.n_corrected, heard, 0.02 * heard);
+    end(&sea);
+}
+
 /* Channel 2 hears ours 0.1 s before the reference does, and the neighbour, which lies abeam, when it does.
  * Whichever of the two channels the note names an impulse of, the neighbour is taken out on both.
  */
@@ -353,6 +377,7 @@ int main(void)
         cmocka_unit_test(a_louder_neighbour_counts_until_it_is_named),
         cmocka_unit_test(there_and_back_is_where_it_was),
         cmocka_unit_test(since_is_kept_to),
+        cmocka_unit_test(what_was_missed_beside_the_named_one_is_stepped_over),
         cmocka_unit_test(the_train_is_taken_out_on_both_channels),
     };
     return cmocka_run_group_tests_name("correction", tests, NULL, NULL);
