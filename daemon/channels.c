@@ -29,6 +29,21 @@ static bool is_past(const char *due_date, int64_t unix_ns)
            unix_ns >= due_ns + INT64_C(86400) * TIME_NS_PER_S;
 }
 
+/* Whether it would measure impulses, were there room: one that only listens clips at them by intent. */
+static bool is_refused(const struct calibration *calibration)
+{
+    return calibration->role != ROLE_LISTEN && !calibration_has_room(calibration);
+}
+
+bool channels_refused(const struct stream_settings *stream, uint32_t n_channels, char *out, size_t size)
+{
+    size_t length = 0;
+    for (uint32_t c = 1; c <= n_channels; c++)
+        if (is_refused(&stream->channels[c - 1].calibration) && length < size)
+            length += (size_t)snprintf(out + length, size - length, "%s%u", length > 0 ? ", " : "", c);
+    return length > 0;
+}
+
 static enum status say_what_is_wrong(struct recorder *recorder, int64_t watch_ns, int64_t unix_ns,
                                      uint32_t number, const struct channel_settings *channel,
                                      const struct channel_facts *facts)
@@ -42,7 +57,7 @@ static enum status say_what_is_wrong(struct recorder *recorder, int64_t watch_ns
                  facts->channel, *facts->serial ? facts->serial : "no serial", channel->due_date);
         status = recorder_health(recorder, watch_ns, number, false, sentence);
     }
-    if (status == STATUS_OK && !calibration_has_room(calibration)) {
+    if (status == STATUS_OK && is_refused(calibration)) {
         snprintf(
             sentence, sizeof sentence,
             "channel %u (%s): impulse levels are refused: it clips at %.1f dB, less than %.0f dB above the "

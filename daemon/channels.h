@@ -5,6 +5,8 @@
 #include "base/status.h"
 #include "recorder.h"
 #include "settings/site.h"
+#include <stdbool.h>
+#include <stddef.h>
 #include <stdint.h>
 
 /* The facts of one channel as its settings give them; texts are borrowed from the settings. */
@@ -14,5 +16,9 @@ struct channel_facts channels_facts(const struct stream_settings *stream, uint32
  * past its due date (by unix_ns) and for a channel whose impulse levels are refused. */
 enum status channels_record(struct recorder *recorder, int64_t watch_ns, int64_t unix_ns, uint32_t number,
                             const struct stream_settings *stream, uint32_t n_channels, double rate_hz);
+
+/* Numbers of the channels whose impulse levels are refused, "1, 3", into out[size]; false, and out untouched,
+ * where there are none. A channel that only listens measures no impulses, and is none of them. */
+bool channels_refused(const struct stream_settings *stream, uint32_t n_channels, char *out, size_t size);
 
 #endif

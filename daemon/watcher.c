@@ -1,6 +1,7 @@
 /* The watch's thread; see watcher.h. */
 #include "watcher.h"
 #include "base/time.h"
+#include "channels.h"
 #include "clock.h"
 #include "float_mode.h"
 #include "hearing.h"
@@ -18,7 +19,7 @@
 
 struct watcher {
     struct watcher_setup setup;
-    struct hearing_view *hearing; /* 200 kB, and read by nobody else */
+    struct hearing_view *hearing; /* 500 kB, and read by nobody else */
     struct watch_view *view;
     unsigned next_note;
     uint64_t note_counter, position_counter;
@@ -210,6 +211,18 @@ static void look_at_feed(struct watcher *watcher, int64_t watch_ns)
     }
 }
 
+/* Channels whose impulse levels are refused, all that the run has: it holds until the settings change. */
+static void look_at_room(struct watcher *watcher, uint32_t i)
+{
+    const struct hearing_stream *shown = &watcher->hearing->streams[i];
+    char numbers[4 * FLOW_MAX_CHANNELS];
+    if (channels_refused(&watcher->setup.stream_settings[i], shown->n_channels, numbers, sizeof numbers))
+        hearing_add_fault(
+            watcher->hearing,
+            "IMPULSE LEVELS REFUSED: %s, channel %s, clips less than %.0f dB over the expected peak",
+            shown->name, numbers, CALIBRATION_ROOM_DB);
+}
+
 /* Which advice has reached the disk since the last look. */
 static void look_at_committed(struct watcher *watcher)
 {
@@ -275,6 +288,8 @@ static void publish(struct watcher *watcher, int64_t watch_ns)
     }
     if (left_behind)
         hearing_add_fault(hearing, "A LIVE STREAM LAGS: its events come late");
+    for (uint32_t i = 0; i < watcher->setup.n_streams; i++)
+        look_at_room(watcher, i);
     if (watcher->setup.board && watch_ns - watcher->beat_ns >= BEAT_NS) {
         watcher->beat_ns = watch_ns;
         keep_status(watcher,

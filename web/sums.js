@@ -91,7 +91,7 @@ const counted = (pairs) => pairs.filter((pair) => pair[0]).map((pair) => `${pair
 /** What the sums lack, and what may be wrong with them. */
 function drawLeftOut(state) {
   const lines = state.sources.map((s) => ({ key: place(s), at: at(state, s),
-    out: counted([[s.n_other, "of another project"], [s.n_unknown, "of unknown origin"], [s.n_relative, "on a channel that is not calibrated"], [s.n_refused, "on a channel that clips too near the expected peak"]]),
+    out: counted([[s.n_other, "of another project"], [s.n_unknown, "of unknown origin"], [s.n_relative, `on channel ${place(s)}, which is not calibrated`], [s.n_refused, `on channel ${place(s)}, which clips too near the expected peak`]]),
     in: counted([[s.n_clipped, "clipped (levels are lower bounds)"], [s.n_overlapped, "overlapped by another"], [s.n_weak, "less than 10 dB above the background"]]) })).filter((s) => s.out || s.in);
   keyed($("left_out"), lines, (s) => s.key, () => el("li"), (node, s) => setText(node, [s.out && `Left out of every sum${s.at}: ${s.out}.`, s.in && `In the sums${s.at}: ${s.in}.`].filter(Boolean).join(" ")));
 }

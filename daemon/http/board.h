@@ -20,7 +20,7 @@
 #define BOARD_MAX_CALLS 40
 #define BOARD_MAX_IMPULSES 40
 #define BOARD_MAX_UNHEARD 40
-#define BOARD_MAX_FAULTS 8
+#define BOARD_MAX_FAULTS 20 /* two of each stream, and those of the watch */
 #define BOARD_MAX_EXPOSURES 64
 #define BOARD_MAX_SOURCES 32  /* channels that measure impulses */
 #define BOARD_CURVE_STEPS 360 /* an hour */

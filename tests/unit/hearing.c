@@ -1,9 +1,10 @@
 /* daemon/hearing: the curve of our impulses after a person has said that some are another's, against the
- * greatest of each step by the plainest of loops. */
+ * greatest of each step by the plainest of loops; and which channels are named as refused. */
 #include "support/test.h"
 
 #include "base/random.h"
 #include "base/time.h"
+#include "channels.h"
 #include "hearing.h"
 #include <math.h>
 #include <stdlib.h>
@@ -141,11 +142,40 @@ static void what_is_no_longer_kept_stays(void **state)
     free(hearing);
 }
 
+/* A clip level of 180 dB (sensitivity -180 dB re 1 V/uPa, full scale 1 V) has room for a peak of 174 dB. */
+static void refused_channels_are_named(void **state)
+{
+    (void)state;
+    struct stream_settings *stream = calloc(1, sizeof *stream);
+    char numbers[64] = "as it was";
+    assert_non_null(stream);
+    for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
+        stream->channels[c].calibration = (struct calibration){.known = true,
+                                                               .sensitivity_db = -180,
+                                                               .full_scale_v = 1,
+                                                               .expected_peak_db = 174,
+                                                               .role = ROLE_BOTH};
+    assert_false(channels_refused(stream, FLOW_MAX_CHANNELS, numbers, sizeof numbers));
+    assert_string_equal(numbers, "as it was");
+    stream->channels[0].calibration.expected_peak_db = 174.1;
+    stream->channels[2].calibration.expected_peak_db = 190;
+    stream->channels[2].calibration.role = ROLE_MEASURE;
+    stream->channels[4].calibration.expected_peak_db = 190; /* it listens: it measures no impulses */
+    stream->channels[4].calibration.role = ROLE_LISTEN;
+    stream->channels[11].calibration.expected_peak_db = 190;
+    assert_true(channels_refused(stream, 4, numbers, sizeof numbers));
+    assert_string_equal(numbers, "1, 3");
+    assert_true(channels_refused(stream, FLOW_MAX_CHANNELS, numbers, sizeof numbers));
+    assert_string_equal(numbers, "1, 3, 12");
+    free(stream);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(the_curve_drops_what_is_anothers),
         cmocka_unit_test(what_is_no_longer_kept_stays),
+        cmocka_unit_test(refused_channels_are_named),
     };
     return cmocka_run_group_tests_name("hearing", tests, NULL, NULL);
 }
