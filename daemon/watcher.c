@@ -117,6 +117,14 @@ static void push(struct watcher *watcher, struct event *event)
     keep_status(watcher, watch_push(watcher->setup.watch, event, &sink));
 }
 
+/* What people did not say, or said of the future, happened when it became known. */
+static void date_note(struct note *note, int64_t known_ns)
+{
+    note->known_ns = known_ns;
+    if (note->occurred_ns == 0 || note->occurred_ns > known_ns)
+        note->occurred_ns = known_ns;
+}
+
 /* Notes of the timetable that are due before or at a watch time. */
 static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
 {
@@ -127,7 +135,7 @@ static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
             return;
         struct event event = {.kind = EVENT_NOTE, .known_ns = at_ns};
         event.as.note = timed->note;
-        event.as.note.known_ns = event.as.note.occurred_ns = at_ns;
+        date_note(&event.as.note, at_ns);
         event.counter = watcher->note_counter + 1;
         push(watcher, &event);
         watcher->next_note++;
@@ -136,9 +144,7 @@ static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
 
 static void push_entered_note(struct watcher *watcher, struct event *event)
 {
-    event->as.note.known_ns = event->known_ns;
-    if (event->as.note.occurred_ns == 0 || event->as.note.occurred_ns > event->known_ns)
-        event->as.note.occurred_ns = event->known_ns;
+    date_note(&event->as.note, event->known_ns);
     event->counter = watcher->note_counter + 1;
     push(watcher, event);
     merge_note_taken(watcher->setup.merge, watcher->note_counter);
