@@ -1,10 +1,5 @@
-/* Finds and measures the impulses of one channel. Units of time inside: a slot is about 0.25 ms of samples, a
- * cell 4 slots, about 1 ms. */
-#include "level/impulses.h"
-#include "level/impulse_bands.h"
-#include "level/impulse_cells.h"
-#include "level/impulse_measure.h"
-#include "level/tone_part.h"
+/* Finds and measures the impulses of one channel; see level/impulse_finder.h for its parts. */
+#include "level/impulse_finder.h"
 #include <math.h>
 #include <stddef.h>
 #include <stdlib.h>
@@ -16,51 +11,11 @@
 #define BEFORE 48u       /* cells of the window before the trigger */
 #define HOLD 60u         /* cells near the background that end it */
 #define LONGEST 1250u    /* cells of a window from its trigger */
-#define NEXT 300u        /* cells until another impulse can begin */
-#define ECHO 600u        /* cells in which a weaker one is an echo */
+#define FRESH 64u        /* cells in which an echo rises */
 #define BACK 32u         /* cells from another onset to its being seen */
-#define RISE 16u         /* cells */
-#define RISE_RATIO 4.0   /* 6 dB */
 #define NEXT_RATIO 6.3   /* 8 dB */
-#define NEAR_PEAK 0.316  /* 5 dB below */
-#define WEAKER 0.25      /* 6 dB below */
-#define LOW_PART 0.3
-#define LONGEST_T90_S 1.0
-#define JUDGED_T90_S 0.1
-#define SHORT_FRONT_PART 0.55 /* a rectangle has 0.5 */
-#define FRONT_PART 0.4
-#define TONE_PART 0.65
-#define LEAST_DB 8.0
 #define QUIET_CELLS 256u /* before a window, from which its bands' background is learned */
 #define KEPT_CELLS 1664u /* of samples kept: the longest window, the quiet before it and some */
-
-struct finder_window {
-    bool open;
-    bool follows;                  /* it begins where an overlapped one ends */
-    uint64_t start, trigger, loud; /* cells: first, triggered, last one above the close threshold */
-    double highest_short;          /* levels so far */
-    double highest, lowest_since;  /* long level: highest, lowest since it */
-    double weak_highest;           /* the highest before it first fell by NEXT_RATIO; 0 until then */
-};
-
-struct impulse_finder {
-    double rate_hz, full_scale_pa;
-    uint32_t cell_frames;
-    float *ring;           /* [KEPT_CELLS * cell_frames], the last samples pushed */
-    float *window_samples; /* as many: those of the window that is measured, in one piece */
-    uint32_t fill;         /* samples of the cell that is not whole yet */
-    uint64_t start_frame;  /* of the last reset */
-    uint64_t quiet_since;  /* cell from which the sound may be background */
-    struct tone_part *tone_part;
-    struct impulse_bands *bands; /* NULL where nobody asks for bands */
-    struct cells cells;
-    struct cell_background background;
-    struct finder_window window;
-    bool had_one;
-    uint64_t last_trigger; /* of the last impulse given */
-    double last_highest;   /* its highest long level */
-    struct impulse_rejections rejections;
-};
 
 enum status impulse_finder_create(double rate_hz, double full_scale_pa, bool with_bands,
                                   struct impulse_finder **out)
@@ -108,78 +63,9 @@ void impulse_finder_reset(struct impulse_finder *finder, uint64_t next_frame)
     finder->quiet_since = WARM_UP;
     memset(&finder->background, 0, sizeof finder->background);
     memset(&finder->window, 0, sizeof finder->window);
-    finder->had_one = false;
+    finder->had_one = finder->holds = false;
     if (finder->bands)
         impulse_bands_reset(finder->bands);
-}
-
-/* Its 8 ms level rises by 6 dB or more within 16 ms, to within 5 dB of its highest. */
-static bool is_sudden(struct impulse_finder *finder)
-{
-    const struct finder_window *window = &finder->window;
-    const double floor = finder->background.total;
-    for (uint64_t c = window->start + RISE; c < finder->cells.next; c++) {
-        double now = cells_get(&finder->cells, c)->short_level,
-               then = cells_get(&finder->cells, c - RISE)->short_level;
-        if (now >= NEAR_PEAK * window->highest_short && now >= RISE_RATIO * fmax(then, floor))
-            return true;
-    }
-    return false;
-}
-
-static bool is_low(struct impulse_finder *finder, const struct impulse_measures *measures, uint64_t end)
-{
-    const struct cell_background *background = &finder->background;
-    double low = 0, n = (double)(end - finder->window.start) * finder->cell_frames;
-    for (uint64_t c = finder->window.start; c < end; c++)
-        low += cells_get(&finder->cells, c)->total - background->total;
-    low *= finder->cell_frames;
-    double full = measures->exposure_pa2_s * finder->rate_hz;
-    /* The background's own energy scatters by sqrt(2 n): what it may have added to the whole is not held
-     * against it. */
-    double scatter = 3 * sqrt(2 * n) * (background->square - background->mean * background->mean);
-    return low >= LOW_PART * (full - scatter);
-}
-
-static bool is_echo(const struct impulse_finder *finder)
-{
-    if (!finder->had_one)
-        return false;
-    uint64_t since = finder->window.trigger - finder->last_trigger;
-    double ratio = finder->window.highest / finder->last_highest;
-    return (since < NEXT && ratio < 1 / WEAKER) || (since < ECHO && ratio < WEAKER);
-}
-
-/* Energy falls from the onset, and a longer sound is not one tone at a time. */
-static bool is_call(const struct impulse_finder *finder, const struct impulse_measures *measures,
-                    const struct impulse_window *sound)
-{
-    double front = (measures->t50_frame - measures->t5_frame) / (measures->t95_frame - measures->t5_frame);
-    if (measures->t90_s <= JUDGED_T90_S)
-        return front > SHORT_FRONT_PART;
-    return measures->t90_s > LONGEST_T90_S || front > FRONT_PART ||
-           tone_part_measure(finder->tone_part, sound->pascals, sound->n, (size_t)fmax(measures->t5_frame, 0),
-                             (size_t)measures->t95_frame) > TONE_PART;
-}
-
-/* Counts the reason and returns false when the window holds no impulse. */
-static bool judge(struct impulse_finder *finder, const struct impulse_measures *measures,
-                  const struct impulse_window *sound, uint64_t end)
-{
-    struct impulse_rejections *rejections = &finder->rejections;
-    if (measures->rms90_db < measures->background_db + LEAST_DB)
-        rejections->too_weak++;
-    else if (is_echo(finder))
-        rejections->echo++;
-    else if (!is_low(finder, measures, end))
-        rejections->high++;
-    else if (!is_sudden(finder))
-        rejections->slow++;
-    else if (is_call(finder, measures, sound))
-        rejections->call++;
-    else
-        return true;
-    return false;
 }
 
 static float *ring_at(const struct impulse_finder *finder, uint64_t cell)
@@ -204,7 +90,7 @@ static void measure_bands(struct impulse_finder *finder, uint64_t end, struct fo
     const double mean = finder->background.mean;
     if (!finder->bands)
         return;
-    if (!window->follows && window->start >= finder->quiet_since + QUIET_CELLS)
+    if (!window->follows && !window->resumed && window->start >= finder->quiet_since + QUIET_CELLS)
         impulse_bands_learn(finder->bands, gather(finder, window->start - QUIET_CELLS, window->start),
                             QUIET_CELLS * finder->cell_frames, mean);
     found->n_bands = impulse_bands_count(finder->bands);
@@ -212,51 +98,127 @@ static void measure_bands(struct impulse_finder *finder, uint64_t end, struct fo
                           (uint32_t)(end - window->start) * finder->cell_frames, mean, found->band_sel_db);
 }
 
-/* Closes the window before cell `end`, and gives what it holds if that is an impulse. */
+/* False where nothing stands out. `out_sound` borrows the window's samples until the next one is gathered. */
+static bool measure(struct impulse_finder *finder, uint64_t start, uint64_t end,
+                    struct impulse_window *out_sound, struct impulse_measures *out)
+{
+    const struct cell_background *background = &finder->background;
+    *out_sound =
+        (struct impulse_window){.pascals = gather(finder, start, end),
+                                .n = (end - start) * finder->cell_frames,
+                                .rate_hz = finder->rate_hz,
+                                .mean_pa = background->mean,
+                                .background_pa2 = background->square - background->mean * background->mean,
+                                .full_scale_pa = finder->full_scale_pa};
+    if (impulse_measure(out_sound, out) == STATUS_OK)
+        return true;
+    finder->rejections.too_weak++;
+    return false;
+}
+
+static void describe(struct impulse_finder *finder, const struct impulse_measures *measures, uint64_t end,
+                     bool overlapped, struct found_impulse *out)
+{
+    const uint64_t start_frame = finder->start_frame + finder->window.start * finder->cell_frames;
+    *out = (struct found_impulse){.onset_frame = (double)start_frame + measures->t5_frame,
+                                  .start_frame = start_frame,
+                                  .end_frame = finder->start_frame + end * finder->cell_frames,
+                                  .sel_db = measures->sel_db,
+                                  .peak_db = measures->peak_db,
+                                  .peak_to_peak_db = measures->peak_to_peak_db,
+                                  .rms90_db = measures->rms90_db,
+                                  .t90_s = measures->t90_s,
+                                  .background_db = measures->background_db,
+                                  .effective_s = measures->effective_s,
+                                  .kurtosis = measures->kurtosis,
+                                  .window_s = measures->window_s,
+                                  .positive_impulse_pa_s = measures->positive_impulse_pa_s,
+                                  .clipped = measures->clipped,
+                                  .overlapped = overlapped,
+                                  .weak = measures->weak};
+    measure_bands(finder, end, out);
+}
+
+static void tell(const struct impulse_sink *sink, double onset_frame, double t90_s)
+{
+    if (sink->heard)
+        sink->heard(sink->context, onset_frame, t90_s);
+}
+
+static void give_held(struct impulse_finder *finder, uint64_t known_frame, const struct impulse_sink *sink)
+{
+    if (!finder->holds)
+        return;
+    finder->holds = false;
+    finder->held.known_frame = known_frame;
+    sink->take(sink->context, &finder->held);
+}
+
+/* The last frame of the cell that is being taken. */
+static uint64_t frame_now(const struct impulse_finder *finder)
+{
+    return finder->start_frame + (finder->cells.next + 1) * finder->cell_frames - 1;
+}
+
+/* What came after the impulse that is held is its echo, and measured with it, or none of ours. */
+static void close_resumed(struct impulse_finder *finder, uint64_t end, bool overlapped,
+                          const struct impulse_sink *sink)
+{
+    const uint64_t from = finder->window.resumed;
+    struct impulse_window sound;
+    struct impulse_measures measures;
+    bool is_echo = measure(finder, from, end, &sound, &measures) &&
+                   impulse_judge_echo(finder, &measures, &sound, from, end);
+    if (is_echo) {
+        tell(sink, (double)(finder->start_frame + from * finder->cell_frames) + measures.t5_frame,
+             measures.t90_s);
+        finder->rejections.echo++;
+        if (measure(finder, finder->window.start, end, &sound, &measures))
+            describe(finder, &measures, end, overlapped, &finder->held);
+        finder->last_highest = finder->window.highest;
+    }
+    give_held(finder, frame_now(finder), sink);
+}
+
+/* Closes the window before cell `end`, and gives what it holds if that is an impulse; or holds it, while an
+ * echo may come. */
 static void close_window(struct impulse_finder *finder, uint64_t end, bool overlapped,
                          const struct impulse_sink *sink)
 {
-    const struct cell_background *background = &finder->background;
     const struct finder_window *window = &finder->window;
-    uint64_t n = (end - window->start) * finder->cell_frames;
-    struct impulse_window sound = {.pascals = gather(finder, window->start, end),
-                                   .n = n,
-                                   .rate_hz = finder->rate_hz,
-                                   .mean_pa = background->mean,
-                                   .background_pa2 = background->square - background->mean * background->mean,
-                                   .full_scale_pa = finder->full_scale_pa};
+    struct impulse_window sound;
     struct impulse_measures measures;
     finder->window.open = false;
-    if (impulse_measure(&sound, &measures)) {
-        finder->rejections.too_weak++;
+    if (window->resumed) {
+        close_resumed(finder, end, overlapped, sink);
         return;
     }
-    if (!judge(finder, &measures, &sound, end))
+    if (!measure(finder, window->start, end, &sound, &measures) ||
+        !impulse_judge(finder, &measures, &sound, end))
         return;
     finder->had_one = true;
     finder->last_trigger = window->trigger;
     finder->last_highest = window->highest;
-    uint64_t start_frame = finder->start_frame + window->start * finder->cell_frames;
-    struct found_impulse found = {.onset_frame = (double)start_frame + measures.t5_frame,
-                                  .start_frame = start_frame,
-                                  .end_frame = start_frame + n,
-                                  .known_frame = finder->start_frame +
-                                                 (finder->cells.next + 1) * finder->cell_frames - 1,
-                                  .sel_db = measures.sel_db,
-                                  .peak_db = measures.peak_db,
-                                  .peak_to_peak_db = measures.peak_to_peak_db,
-                                  .rms90_db = measures.rms90_db,
-                                  .t90_s = measures.t90_s,
-                                  .background_db = measures.background_db,
-                                  .effective_s = measures.effective_s,
-                                  .kurtosis = measures.kurtosis,
-                                  .window_s = measures.window_s,
-                                  .positive_impulse_pa_s = measures.positive_impulse_pa_s,
-                                  .clipped = measures.clipped,
-                                  .overlapped = overlapped,
-                                  .weak = measures.weak};
-    measure_bands(finder, end, &found);
-    sink->take(sink->context, &found);
+    describe(finder, &measures, end, overlapped, &finder->held);
+    tell(sink, finder->held.onset_frame, finder->held.t90_s);
+    finder->holds = true;
+    finder->held_window = *window;
+    finder->held_end = end;
+    if (overlapped || finder->cells.next >= window->trigger + IMPULSE_NEXT)
+        give_held(finder, frame_now(finder), sink);
+}
+
+/* The window of the impulse that is held goes on: what opens it may be an echo. */
+static void resume_window(struct impulse_finder *finder)
+{
+    const uint64_t now = finder->cells.next;
+    const uint64_t end = finder->held_end, before = now > BEFORE ? now - BEFORE : 0;
+    finder->window = finder->held_window;
+    finder->window.open = true;
+    finder->window.loud = now;
+    finder->window.resumed = before > end ? before : end;
+    finder->window.lowest_since = cells_get(&finder->cells, now)->long_level;
+    finder->window.weak_highest = finder->window.highest;
 }
 
 static void open_window(struct impulse_finder *finder, uint64_t start, bool follows)
@@ -288,7 +250,7 @@ static bool restarts(struct finder_window *window, const struct cell *cell)
 {
     if (window->weak_highest <= 0 && window->highest >= NEXT_RATIO * window->lowest_since)
         window->weak_highest = window->highest;
-    return window->weak_highest > 0 && cell->long_level > window->weak_highest / WEAKER;
+    return window->weak_highest > 0 && cell->long_level > window->weak_highest / IMPULSE_WEAKER;
 }
 
 static void follow_window(struct impulse_finder *finder, const struct cell *cell,
@@ -299,16 +261,19 @@ static void follow_window(struct impulse_finder *finder, const struct cell *cell
     if (background_passes(cell, finder->background.close))
         window->loud = now;
     if (restarts(window, cell)) {
-        finder->rejections.echo++;
+        finder->rejections.echo += !window->resumed;
+        give_held(finder, frame_now(finder), sink);
         open_window(finder, now - BACK, true);
         return;
     }
+    const bool rising = window->resumed && now - window->resumed < BEFORE + FRESH;
     window->highest_short = fmax(window->highest_short, cell->short_level);
-    if (cell->long_level > window->highest && now - window->trigger < NEXT)
+    if (cell->long_level > window->highest && (rising || now - window->trigger < IMPULSE_NEXT))
         window->highest = window->lowest_since = cell->long_level;
-    window->lowest_since = fmin(window->lowest_since, cell->long_level);
-    if (now - window->trigger >= NEXT && cell->long_level >= NEXT_RATIO * window->lowest_since &&
-        cell->long_level >= WEAKER * window->highest) {
+    window->lowest_since = rising ? cell->long_level : fmin(window->lowest_since, cell->long_level);
+    if (!rising && now - window->trigger >= IMPULSE_NEXT &&
+        cell->long_level >= NEXT_RATIO * window->lowest_since &&
+        cell->long_level >= IMPULSE_WEAKER * window->highest) {
         close_window(finder, now - BACK, true, sink);
         open_window(finder, now - BACK, true);
     } else if (now - window->loud >= HOLD) {
@@ -325,11 +290,16 @@ static void take_cell(struct impulse_finder *finder, const float *x, const struc
 {
     const struct cell *cell = cells_push(&finder->cells, x);
     const uint64_t now = finder->cells.next;
+    if (!finder->window.open && finder->holds && now - finder->held_window.trigger >= IMPULSE_NEXT)
+        give_held(finder, frame_now(finder), sink);
     if (finder->window.open)
         follow_window(finder, cell, sink);
-    else if (finder->background.n_cells >= FIRST_CELLS && background_passes(cell, finder->background.open))
-        open_window(finder, now > BEFORE ? now - BEFORE : 0, false);
-    else if (now >= finder->quiet_since + DELAY)
+    else if (finder->background.n_cells >= FIRST_CELLS && background_passes(cell, finder->background.open)) {
+        if (finder->holds)
+            resume_window(finder);
+        else
+            open_window(finder, now > BEFORE ? now - BEFORE : 0, false);
+    } else if (now >= finder->quiet_since + DELAY)
         background_learn(&finder->background, cells_get(&finder->cells, now - DELAY));
 }
 
@@ -349,6 +319,13 @@ void impulse_finder_push(struct impulse_finder *finder, const float *pascals, ui
         finder->cells.next++;
         finder->fill = 0;
     }
+}
+
+void impulse_finder_finish(struct impulse_finder *finder, const struct impulse_sink *sink)
+{
+    const uint64_t frames = finder->cells.next * finder->cell_frames + finder->fill;
+    give_held(finder, finder->start_frame + frames - 1, sink);
+    finder->window.open = false;
 }
 
 void impulse_finder_get_rejections(const struct impulse_finder *finder, struct impulse_rejections *out)

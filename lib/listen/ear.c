@@ -84,15 +84,21 @@ static void take_masked(void *context, const struct gate_masked *masked)
     ear->sink.masked(ear->sink.context, ear->channel, masked);
 }
 
+/* The gate does not wait for an echo. */
+static void take_heard(void *context, double onset_frame, double t90_s)
+{
+    struct ear *ear = context;
+    const struct gate_masked_sink masked = {take_masked, ear};
+    if (ear->gate)
+        gate_push_impulse(ear->gate, onset_frame, t90_s, &masked);
+}
+
 static void take_impulse(void *context, const struct found_impulse *found)
 {
     struct ear *ear = context;
     struct found_impulse corrected = *found;
     const struct found_impulse *impulse = &corrected;
     correct_bands(ear, corrected.band_sel_db, corrected.n_bands);
-    const struct gate_masked_sink masked = {take_masked, ear};
-    if (ear->gate)
-        gate_push_impulse(ear->gate, impulse->onset_frame, impulse->t90_s, &masked);
     ear->sink.impulse(ear->sink.context, ear->channel, impulse);
 }
 
@@ -134,7 +140,7 @@ bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_chann
 {
     const struct fault_sink faults = {take_fault, ear};
     const struct level_sink levels = {take_level, ear};
-    const struct impulse_sink impulses = {take_impulse, ear};
+    const struct impulse_sink impulses = {take_impulse, ear, take_heard};
     const struct found_sink calls = {take_call, ear};
     const struct gate_masked_sink masked = {take_masked, ear};
     uint32_t bad = ear_pick(ear, frames, n, n_channels);
@@ -162,7 +168,10 @@ void ear_finish(struct ear *ear)
 {
     const struct fault_sink faults = {take_fault, ear};
     const struct level_sink levels = {take_level, ear};
+    const struct impulse_sink impulses = {take_impulse, ear, take_heard};
     const struct found_sink calls = {take_call, ear};
+    if (ear->impulses)
+        impulse_finder_finish(ear->impulses, &impulses);
     meter_finish(ear->meter, &levels);
     health_finish(ear->health, &faults);
     if (ear->listens) {

@@ -55,7 +55,7 @@ int main(int argc, char **argv)
     double meter_s = cpu_s() - start;
     start = cpu_s();
     for (uint32_t at = 0; at + 4096 <= n; at += 4096)
-        impulse_finder_push(finder, samples + at, 4096, &(struct impulse_sink){ignore_impulse, NULL});
+        impulse_finder_push(finder, samples + at, 4096, &(struct impulse_sink){.take = ignore_impulse});
     double impulses_s = cpu_s() - start;
     bool written = write(file, samples, n * sizeof *samples) == (ssize_t)(n * sizeof *samples);
     printf("{\"bench\": \"levels_cost\", \"rate_hz\": %.0f, \"levels_ms_per_channel_second\": %.3f, "

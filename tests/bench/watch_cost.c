@@ -150,7 +150,8 @@ static void push_ear(struct ear *ear, const float *frames, uint32_t n, uint32_t 
         gate_push(ear->gate, ear->pascals, n, &(struct gate_masked_sink){drop_masked, NULL});
     times[STAGE_IMPULSES] = bench_cpu_s();
     if (ear->impulses)
-        impulse_finder_push(ear->impulses, ear->pascals, n, &(struct impulse_sink){drop_impulse, &dropped});
+        impulse_finder_push(ear->impulses, ear->pascals, n,
+                            &(struct impulse_sink){.take = drop_impulse, .context = &dropped});
     times[STAGE_TONES] = bench_cpu_s();
     tones_push(ear->tones, ear->pascals, n, &calls);
     times[STAGE_PULSES] = bench_cpu_s();

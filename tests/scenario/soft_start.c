@@ -126,7 +126,7 @@ static void listen_to(const struct scene *scene)
     for (uint64_t at = 0; at + PIECE <= (uint64_t)(scene->duration_s * RATE); at += PIECE) {
         render_get(render, at, frames, PIECE);
         for (uint32_t c = 0; c < CHANNELS; c++) {
-            struct impulse_sink sink = {keep, &found[c]};
+            struct impulse_sink sink = {.take = keep, .context = &found[c]};
             for (uint32_t i = 0; i < PIECE; i++)
                 pascals[i] = (float)(frames[i * CHANNELS + c] * scale[c]);
             impulse_finder_push(finders[c], pascals, PIECE, &sink);

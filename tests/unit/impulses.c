@@ -240,13 +240,14 @@ static void find(const struct sound *sound, uint32_t chunk, struct found *found,
                  struct impulse_rejections *rejections)
 {
     struct impulse_finder *finder = finder_of(sound->rate);
-    struct impulse_sink sink = {keep, found};
+    struct impulse_sink sink = {.take = keep, .context = found};
     found->n = 0;
     for (size_t done = 0; done < sound->n;) {
         size_t take = chunk < sound->n - done ? chunk : sound->n - done;
         impulse_finder_push(finder, sound->x + done, (uint32_t)take, &sink);
         done += take;
     }
+    impulse_finder_finish(finder, &sink);
     if (rejections)
         impulse_finder_get_rejections(finder, rejections);
     impulse_finder_destroy(finder);
@@ -469,6 +470,107 @@ static void an_echo_is_no_second_impulse(void **state)
     }
 }
 
+/* Two exponentials of 1000 Pa and 700 Pa with tau 10 ms (SEL 156.9897 dB and 20 lg 0.7 = 3.098 dB less) in
+ * noise 66 dB below (46 where the weaker comes first): with 60 ms of quiet between them or without, one
+ * impulse with the energy of both, 10 lg(1 + 0.49) = 1.7319 dB more, the peak of the greater, known within
+ * 0.31 s of the first or 0.25 s of the second's end. T90 begins where the first has 5 % of the sum and ends
+ * where the second lacks 5 % of it, since each has more than that: t5 = -tau / 2 ln(1 - 0.05 x 1.49), t95 =
+ * delay - tau / 2 ln(0.05 x 1.49 / 0.49). Weaker first, and quiet between them: the same. */
+static void an_echo_is_measured_with_its_impulse(void **state)
+{
+    (void)state;
+    static const double delays[] = {0.03, 0.1, 0.15, 0.2, 0.25, 0.28};
+    const double rate = 48000, tau = 0.01;
+    for (int order = 0; order < 2; order++)
+        for (int d = order ? 4 : 0; d < 6; d++) {
+            const double first = order ? 0.7 : 1, second = order ? 1 : 0.7, sum = 1.49;
+            struct sound sound = make_sound(rate, 4, order ? 5 : 0.5, 46);
+            for (size_t i = 0; i < sound.n; i++) {
+                double t = ((double)i + 0.5) / rate - 2;
+                sound.x[i] += (float)(first * wave_value(EXPONENTIAL, t) +
+                                      second * wave_value(EXPONENTIAL, t - delays[d]));
+            }
+            find(&sound, 4096, &found, NULL);
+            assert_int_equal(found.n, 1);
+            const struct found_impulse *f = &found.impulse[0];
+            double t5 = -tau / 2 * log(1 - 0.05 * sum / (first * first)),
+                   t95 = delays[d] - tau / 2 * log(0.05 * sum / (second * second));
+            /* waves that still sound when the second begins: 2 exp(-delay / tau) of the product */
+            double both = sum + 2 * first * second * exp(-delays[d] / tau);
+            double late_s = (double)f->known_frame / rate - 2;
+            printf("# figure %.0f %% and after %.2f s %.0f %%: SEL %+.4f dB from the closed form, T90 %.1f "
+                   "ms for "
+                   "%.1f, known after %.3f s\n",
+                   100 * first, delays[d], 100 * second,
+                   f->sel_db - wanted[EXPONENTIAL][0] - 10 * log10(both), f->t90_s * 1e3, (t95 - t5) * 1e3,
+                   late_s);
+            assert_near(f->sel_db, wanted[EXPONENTIAL][0] + 10 * log10(both), 0.05);
+            assert_near(f->peak_db, 180 + (order ? 20 * log10(1 + 0.7 * exp(-delays[d] / tau)) : 0), 0.05);
+            if (d > 0)
+                assert_near(f->t90_s, t95 - t5, 0.5e-3);
+            assert_near(f->onset_frame / rate, 2 + t5, 1.5e-3);
+            assert_true(late_s <= fmax(0.31, delays[d] + 0.25));
+            free(sound.x);
+        }
+}
+
+/* A blow is what it is without them where clicks of a sperm whale or a dolphin, a whistle, a fin whale's
+ * pulse or a much louder blow come 0.2 s after it (waves invented). */
+static void what_follows_and_is_no_echo_is_not_measured(void **state)
+{
+    (void)state;
+    const double rate = 192000;
+    double alone_db = NAN;
+    for (int kind = 0; kind < 6; kind++) {
+        struct sound sound = make_sound(rate, 4, 1, 47);
+        for (size_t i = 0; i < sound.n; i++)
+            sound.x[i] += 0.05F * (float)wave_value(DAMPED_SINE, ((double)i + 0.5) / rate - 2);
+        for (int k = 0; k < 8 && kind == 1; k++)
+            add_burst(&sound, 2.2 + 0.012 * k, 0.0003, 0.0001, 11000, 11000, 100);
+        for (int k = 0; k < 8 && kind == 2; k++)
+            add_burst(&sound, 2.2 + 0.012 * k, 0.0001, 0.00005, 80000, 80000, 1000);
+        if (kind == 3)
+            add_burst(&sound, 2.2, 0.4, 0.02, 6000, 14000, 100);
+        if (kind == 4)
+            add_burst(&sound, 2.26, 1.0, 0.1, 23, 18, 20);
+        for (size_t i = 0; i < sound.n && kind == 5; i++)
+            sound.x[i] += (float)wave_value(DAMPED_SINE, ((double)i + 0.5) / rate - 2.2);
+        struct impulse_rejections r;
+        find(&sound, 4096, &found, &r);
+        printf("# figure a blow, and what is no echo (%d): %u found, SEL %.3f dB; rejected: %u high, %u not "
+               "sudden, %u like a call\n",
+               kind, found.n, found.n > 0 ? found.impulse[0].sel_db : NAN, (unsigned)r.high, (unsigned)r.slow,
+               (unsigned)r.call);
+        assert_int_equal(found.n, kind == 5 ? 2 : 1);
+        if (kind == 0)
+            alone_db = found.impulse[0].sel_db;
+        assert_near(found.impulse[0].sel_db, alone_db, 0.001);
+        free(sound.x);
+    }
+}
+
+/* Blows every 0.5 s, each with an echo 6 dB weaker 0.2 or 0.28 s later: each is found, and none is taken for
+ * an echo. */
+static void echoes_do_not_join_blows(void **state)
+{
+    (void)state;
+    for (int d = 0; d < 2; d++) {
+        struct sound sound = make_sound(48000, 14, 1, 48);
+        struct random random;
+        random_reset(&random, 49);
+        uint32_t n = 0;
+        for (double t = 2; t < 12; t += 0.5, n++) {
+            add_blow(&sound, t, 100, 0.02, &random);
+            add_blow(&sound, t + (d ? 0.28 : 0.2), 25, 0.02, &random);
+        }
+        find(&sound, 4096, &found, NULL);
+        assert_int_equal(found.n, n);
+        for (uint32_t i = 0; i < n; i++)
+            assert_near(found.impulse[i].sel_db, 10 * log10(125e12), 0.2);
+        free(sound.x);
+    }
+}
+
 /* What comes just before a blow (a first arrival through the sea floor, another sound) does not hide it. */
 static void a_weak_arrival_before_does_not_hide_a_blow(void **state)
 {
@@ -535,7 +637,7 @@ static void chunks_do_not_matter(void **state)
         }
     }
     struct impulse_finder *finder = finder_of(48000);
-    struct impulse_sink sink = {keep, &found};
+    struct impulse_sink sink = {.take = keep, .context = &found};
     found.n = 0;
     impulse_finder_reset(finder, 1000000);
     impulse_finder_push(finder, sound.x, (uint32_t)sound.n, &sink);
@@ -561,6 +663,9 @@ int main(void)
         cmocka_unit_test(noise_holds_no_impulse),
         cmocka_unit_test(other_sounds_are_no_impulses),
         cmocka_unit_test(an_echo_is_no_second_impulse),
+        cmocka_unit_test(an_echo_is_measured_with_its_impulse),
+        cmocka_unit_test(what_follows_and_is_no_echo_is_not_measured),
+        cmocka_unit_test(echoes_do_not_join_blows),
         cmocka_unit_test(a_weak_arrival_before_does_not_hide_a_blow),
         cmocka_unit_test(clipped_and_overlapped_are_said),
         cmocka_unit_test(chunks_do_not_matter),
