@@ -36,7 +36,8 @@ struct path {
  * front. */
 struct cells {
     float *score, *slope;
-    float *level, *peak; /* smoothed power of the path's cells, and the highest of it, slowly forgotten */
+    float *level, *peak; /* smoothed power of the path's cells over the background, and the highest of it,
+                            slowly forgotten */
     int16_t *path;
     uint64_t *first;
 };
@@ -60,11 +61,12 @@ struct tracer {
     float *power_store,
         *power; /* power[n / 2 + 1] in the middle of a store with margins of TILE and 2 * TILE */
 
-    uint64_t frame;                                   /* number of the newest frame plus 1 */
-    float *level, *floor, *smooth, *occupancy, *gain; /* [stride] */
-    float *tail;   /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
-    float *best;   /* [stride] of the recursion: the best score that leads to each cell ... */
-    int32_t *step; /* ... and how far it comes, or STEP_START */
+    uint64_t frame;                           /* number of the newest frame plus 1 */
+    float *level, *smooth, *occupancy, *gain; /* [stride] */
+    float *smooth_snr, *floor; /* [stride], over the background: a shot's frame is its own background */
+    float *tail;               /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
+    float *best;               /* [stride] of the recursion: the best score that leads to each cell ... */
+    int32_t *step;             /* ... and how far it comes, or STEP_START */
     struct cells now, before;
     struct path paths[MAX_PATHS];
 

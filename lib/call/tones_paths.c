@@ -37,45 +37,43 @@ static inline void find_best(struct tracer *tracer, uint32_t k, int8_t *out_step
 }
 
 /* The cell begins a path, or goes on from the one that the best path comes from. */
-static void begin_cell(struct tracer *tracer, uint32_t at, float power)
+static void begin_cell(struct tracer *tracer, uint32_t at, float snr)
 {
     struct cells *now = &tracer->now;
     now->slope[at] = 0;
-    now->level[at] = now->peak[at] = power;
+    now->level[at] = now->peak[at] = snr;
     now->path[at] = NO_PATH;
     now->first[at] = tracer->frame;
 }
 
-static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float power)
+static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr)
 {
     struct cells *now = &tracer->now;
     const struct cells *before = &tracer->before;
     const uint32_t from = (uint32_t)((int)at - step);
     const float peak = before->peak[from] * tracer->tail_fall;
     now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
-    now->level[at] = before->level[from] + SMOOTHING * (power - before->level[from]);
+    now->level[at] = before->level[from] + SMOOTHING * (snr - before->level[from]);
     now->peak[at] = now->level[at] > peak ? now->level[at] : peak;
     now->path[at] = before->path[from];
     now->first[at] = before->first[from];
 }
 
-static void step_cell(struct tracer *tracer, uint32_t k, float ceiling)
+static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceiling)
 {
     const uint32_t at = k + MAX_STEP;
     const int step = tracer->step[k];
-    const float power = tracer->power[tracer->first_bin + k];
     if (step == STEP_START) {
-        begin_cell(tracer, at, power);
+        begin_cell(tracer, at, snr);
         return;
     }
-    if (tracer->gain[k] > FLANK_GAIN &&
-        power < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
+    if (tracer->gain[k] > FLANK_GAIN && snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
         const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
         tracer->now.score[at] = score > 0 ? score : 0;
         if (score <= 0)
             return;
     }
-    inherit_cell(tracer, at, step, power);
+    inherit_cell(tracer, at, step, snr);
     tracer->tail[k] = tracer->now.path[at] == NO_PATH ? 0 : TAIL_SHARE;
 }
 
@@ -83,7 +81,9 @@ static void step_cells(struct tracer *tracer)
 {
     const float ceiling = (float)tracer->setup.ceiling;
     float *scores = tracer->now.score + MAX_STEP;
-    int8_t *steps = tracer->history_step + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
+    const size_t row = (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
+    const float *snrs = tracer->history_snr + row;
+    int8_t *steps = tracer->history_step + row;
     for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
         find_best(tracer, k, steps);
         const lanes best = lanes_load(tracer->best + k);
@@ -96,7 +96,7 @@ static void step_cells(struct tracer *tracer)
     memset(tracer->tail, 0, tracer->stride * sizeof *tracer->tail);
     for (uint32_t k = 0; k < tracer->n_bins; k++)
         if (scores[k] > 0)
-            step_cell(tracer, k, ceiling);
+            step_cell(tracer, k, snrs[k], ceiling);
 }
 
 /* Whether no path runs in the next four cells. */

@@ -80,8 +80,8 @@ static void free_cells(struct cells *cells)
 static bool make_arrays(struct tracer *tracer)
 {
     size_t k = tracer->stride, history = tracer->n_history;
-    float **const of_bins[] = {&tracer->level, &tracer->floor, &tracer->smooth, &tracer->occupancy,
-                               &tracer->gain,  &tracer->tail,  &tracer->best};
+    float **const of_bins[] = {&tracer->level,     &tracer->floor, &tracer->smooth, &tracer->smooth_snr,
+                               &tracer->occupancy, &tracer->gain,  &tracer->tail,   &tracer->best};
     bool good = true;
     for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
         good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
@@ -135,11 +135,11 @@ void tracer_destroy(struct tracer *tracer)
         return;
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
-    void *const arrays[] = {
-        tracer->level,   tracer->floor,        tracer->smooth,        tracer->occupancy,
-        tracer->gain,    tracer->best,         tracer->step,          tracer->held,
-        tracer->limited, tracer->power_store,  tracer->tail,          tracer->centre,
-        tracer->trail,   tracer->history_step, tracer->history_power, tracer->history_snr};
+    void *const arrays[] = {tracer->level,      tracer->floor,   tracer->smooth,       tracer->smooth_snr,
+                            tracer->occupancy,  tracer->gain,    tracer->best,         tracer->step,
+                            tracer->held,       tracer->limited, tracer->power_store,  tracer->tail,
+                            tracer->centre,     tracer->trail,   tracer->history_step, tracer->history_power,
+                            tracer->history_snr};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);
@@ -208,7 +208,7 @@ static void weigh_cells(struct tracer *tracer)
         const lanes level = lanes_load(tracer->level + k), snr = power / level;
         lanes occupancy = lanes_load(tracer->occupancy + k), smooth = lanes_load(tracer->smooth + k);
         lanes floor = lanes_load(tracer->floor + k);
-        lanes gain = slope * power / lanes_greatest(level, floor) - offset;
+        lanes gain = slope * snr / lanes_greatest(lanes_all(1), floor) - offset;
         gain = lanes_least(gain, lanes_all(MAX_GAIN));
         gain = lanes_choose((power < leak) & (gain > lanes_all(FLANK_GAIN)), lanes_all(FLANK_GAIN), gain);
         lanes_store(tracer->gain + k, gain);
@@ -218,7 +218,10 @@ static void weigh_cells(struct tracer *tracer)
         lanes_store(tracer->occupancy + k, occupancy);
         smooth += (power - smooth) * lanes_all(SMOOTHING);
         lanes_store(tracer->smooth + k, smooth);
-        lanes_store(tracer->floor + k, lanes_greatest(smooth * lanes_load(tracer->tail + k),
+        lanes snr_smooth = lanes_load(tracer->smooth_snr + k);
+        snr_smooth += (snr - snr_smooth) * lanes_all(SMOOTHING);
+        lanes_store(tracer->smooth_snr + k, snr_smooth);
+        lanes_store(tracer->floor + k, lanes_greatest(snr_smooth * lanes_load(tracer->tail + k),
                                                       floor * lanes_all(tracer->tail_fall)));
     }
 }
