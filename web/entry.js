@@ -20,6 +20,7 @@ const KINDS = {
   Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "Open or close", ["open", "close"])] },
   Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 })] },
   Quieting: { kind: "quieting", fields: () => [select("answer", "The measure is", ["on", "off"]), { name: "text", label: "Which", maxlength: 100 }] },
+  "Other source": { kind: "other source", fields: () => [{ name: "text", label: "Which (its name in the settings)", required: true, maxlength: 63 }, select("answer", "It is", ["on", "off"])] },
   Whose: {
     kind: "whose", person: true,
     fields: () => [select("impulse", "Impulse", impulses().map((i) => ({ value: i.id, text: utc(i.time_s) + ", " + (i.sel_db === null ? "no level" : i.sel_db.toFixed(1) + " dB") + ", " + i.whose }))), select("answer", "Its train is", ["other", "ours"])],

@@ -7,7 +7,7 @@
 
 #define KINDS_ALLOWED                                                                                        \
     "sign-on, sign-off, sighting, distance, verdict, release, acknowledgement, source state, job, weather, " \
-    "quieting, whose, position, mark, remark"
+    "quieting, other source, whose, position, mark, remark"
 
 __attribute__((format(printf, 4, 5))) static enum status
 refuse(struct note_refusal *refusal, const char *field, const char *allowed, const char *format, ...)

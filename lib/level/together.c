@@ -15,11 +15,19 @@ struct falls {
     double spread_db[FIELD_CURVE_N][LEVEL_MAX_BANDS];
 };
 
+/* When another source sounds: on at first, then each change. */
+#define KEPT_CHANGES 64u
+struct changes {
+    uint32_t n;                       /* ever: 1st, 3rd ... off; 2nd, 4th ... on */
+    int64_t changed_ns[KEPT_CHANGES]; /* a ring */
+};
+
 enum { LOW, BEST, HIGH, BOUNDS };
 
 struct together {
     struct together_setup setup;
     struct together_other others[TOGETHER_MAX_OTHERS];
+    struct changes changes[TOGETHER_MAX_OTHERS];
     struct falls *falls;        /* [n_others] */
     struct field_curve *curves; /* [BOUNDS][n_others + 1], ours first */
 };
@@ -66,6 +74,38 @@ void together_destroy(struct together *together)
     free(together);
 }
 
+uint32_t together_switch(struct together *together, const char *name, bool on, int64_t at_ns)
+{
+    uint32_t n = 0;
+    for (uint32_t i = 0; i < together->setup.n_others; i++) {
+        struct changes *changes = &together->changes[i];
+        if (strcmp(together->others[i].name, name) != 0)
+            continue;
+        n++;
+        if (on != (changes->n % 2 == 0))
+            changes->changed_ns[changes->n++ % KEPT_CHANGES] = at_ns;
+    }
+    return n;
+}
+
+/* How long it sounded between two times; before the first change that is kept it goes by that. */
+static double seconds_on(const struct changes *changes, int64_t from_ns, int64_t to_ns)
+{
+    uint32_t first = changes->n > KEPT_CHANGES ? changes->n - KEPT_CHANGES : 0;
+    int64_t on_ns = 0, end_ns = to_ns;
+    for (uint32_t k = changes->n; k > first && end_ns > from_ns; k--) {
+        int64_t at_ns = changes->changed_ns[(k - 1) % KEPT_CHANGES];
+        int64_t start_ns = at_ns > from_ns ? at_ns : from_ns;
+        if (start_ns < end_ns) {
+            on_ns += k % 2 == 0 ? end_ns - start_ns : 0;
+            end_ns = start_ns;
+        }
+    }
+    if (end_ns > from_ns && first % 2 == 0)
+        on_ns += end_ns - from_ns;
+    return time_to_s(on_ns);
+}
+
 static void fall_of_band(const struct exposure_loss *loss, double frequency_hz, double from_m, double to_m,
                          double *out_db, double *out_spread_db)
 {
@@ -93,6 +133,8 @@ void together_set_loss(struct together *together, const struct exposure_loss *lo
 static double metric_db(const struct together_other *other, const struct criterion *criterion, double seconds)
 {
     bool impulsive = other->sound == SOUND_IMPULSIVE;
+    if (!(seconds > 0))
+        return -(double)INFINITY;
     if (criterion->metric == METRIC_SEL_CUMULATIVE)
         return units_power_db(impulsive ? other->rate_per_s * seconds : seconds);
     if (criterion->metric == METRIC_SEL_SINGLE)
@@ -244,14 +286,15 @@ enum status together_get(struct together *together, struct exposure *exposure, u
     enum status status = exposure_get(exposure, index, now_ns, &state);
     if (status != STATUS_OK || state.first_ns < 0)
         return status == STATUS_OK ? STATUS_NOT_FOUND : status;
-    double seconds = fmax(time_to_s(now_ns - state.first_ns), 1.0);
+    int64_t until_ns = state.first_ns + TIME_NS_PER_S > now_ns ? state.first_ns + TIME_NS_PER_S : now_ns;
     for (uint32_t i = 0; i < n && status == STATUS_OK; i++) {
         struct field_curve *const curves[BOUNDS] = {&together->curves[i], &together->curves[n + i],
                                                     &together->curves[2 * n + i]};
         if (i == 0)
             status = curve_ours(together, exposure, index, now_ns, curves);
         else
-            curve_other(together, i - 1, criterion, seconds, curves);
+            curve_other(together, i - 1, criterion,
+                        seconds_on(&together->changes[i - 1], state.first_ns, until_ns), curves);
         for (int bound = LOW; bound < BOUNDS; bound++)
             make_falling(curves[bound]);
     }

@@ -25,6 +25,7 @@
 #include "level/exposure.h"
 #include "level/field.h"
 #include "level/level.h"
+#include <stdbool.h>
 
 #define TOGETHER_MAX_OTHERS 32
 #define TOGETHER_NAME_SIZE 64
@@ -65,6 +66,10 @@ struct together;
 /* STATUS_BAD_ARGUMENT for a setup outside what is said above; STATUS_NO_MEMORY. The caller owns *out. */
 enum status together_create(const struct together_setup *setup, struct together **out);
 void together_destroy(struct together *together);
+/* Another source of that name falls silent or sounds again, from a time that does not fall on; all sound at
+ * first. A sum over time counts the seconds of the window in which it sounded, a level counts where it
+ * sounded in it at all. Returns how many have the name. */
+uint32_t together_switch(struct together *together, const char *name, bool on, int64_t at_ns);
 /* Works out again how the others' bands fall: call when the law has changed. */
 void together_set_loss(struct together *together, const struct exposure_loss *loss);
 

@@ -8,11 +8,14 @@
 #include <string.h>
 
 static const char *const kind_words[NOTE_KIND_COUNT] = {
-    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off", [NOTE_SIGHTING] = "sighting",
-    [NOTE_DISTANCE] = "distance",   [NOTE_VERDICT] = "verdict",   [NOTE_RELEASE] = "release",
-    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",           [NOTE_WEATHER] = "weather",
-    [NOTE_QUIETING] = "quieting",   [NOTE_WHOSE] = "whose",       [NOTE_POSITION] = "position",
-    [NOTE_MARK] = "mark",           [NOTE_REMARK] = "remark",     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
+    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off",
+    [NOTE_SIGHTING] = "sighting",   [NOTE_DISTANCE] = "distance",
+    [NOTE_VERDICT] = "verdict",     [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",
+    [NOTE_WEATHER] = "weather",     [NOTE_QUIETING] = "quieting",
+    [NOTE_OTHER] = "other source",  [NOTE_WHOSE] = "whose",
+    [NOTE_POSITION] = "position",   [NOTE_MARK] = "mark",
+    [NOTE_REMARK] = "remark",       [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
 
 enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
@@ -53,9 +56,9 @@ static const struct field fields[] = {
     {TEXT(station), .allowed = NAME_ALLOWED},
     {TEXT(species), .allowed = NAME_ALLOWED},
     {WORD(verdict, verdict_words), .allowed = "confirm, dismiss, left"},
-    {WORD(answer, answer_words),
-     .allowed = "seen, passed, stopped, declined (acknowledgement); open, close (job); on, off (quieting); "
-                "ours, other (whose)"},
+    {WORD(answer, answer_words), .allowed = "seen, passed, stopped, declined (acknowledgement); open, close "
+                                            "(job); on, off (quieting, other source); "
+                                            "ours, other (whose)"},
     {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
     {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
     {.name = "job",
@@ -210,7 +213,8 @@ static const char *missing_of_answer(const struct note *note)
     bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
     bool of_whose = strcmp(note->answer, "ours") == 0 || strcmp(note->answer, "other") == 0;
     bool good = *note->answer && of_job == (note->kind == NOTE_JOB) &&
-                of_quieting == (note->kind == NOTE_QUIETING) && of_whose == (note->kind == NOTE_WHOSE);
+                of_quieting == (note->kind == NOTE_QUIETING || note->kind == NOTE_OTHER) &&
+                of_whose == (note->kind == NOTE_WHOSE);
     return good ? NULL : "answer";
 }
 
@@ -250,6 +254,8 @@ static const char *missing_of(const struct note *note)
         return !*note->job ? "job" : missing_of_answer(note);
     case NOTE_QUIETING:
         return missing_of_answer(note);
+    case NOTE_OTHER:
+        return !*note->text ? "text" : missing_of_answer(note);
     case NOTE_WHOSE:
         return !person ? "person" : !*note->impulse ? "impulse" : missing_of_answer(note);
     case NOTE_WEATHER:

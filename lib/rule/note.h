@@ -28,8 +28,9 @@ enum note_kind {
     NOTE_WHOSE,    /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
                       occurred_ns on; all of it in the job where that is not given */
     NOTE_POSITION, /* latitude_deg, longitude_deg of the source */
-    NOTE_MARK,     /* text */
-    NOTE_REMARK,   /* text */
+    NOTE_OTHER,  /* text (name of another source in the settings), answer (on | off): whether it is at work */
+    NOTE_MARK,   /* text */
+    NOTE_REMARK, /* text */
     NOTE_KIND_COUNT
 };
 

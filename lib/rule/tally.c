@@ -269,6 +269,8 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
         tally_take_level(tally, event->stream, &event->as.level);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_QUIETING)
         tally->quieting_on = strcmp(event->as.note.answer, "on") == 0;
+    else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_OTHER)
+        tally_take_other(tally, outcome, sink);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_SOURCE)
         tally_sounding_take(&tally->sounding, &event->as.note, outcome->watch_ns);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {

@@ -91,6 +91,8 @@ void tally_say_finding(struct tally *tally, uint32_t i, int64_t watch_ns,
                        const struct finding_outcome *finding, struct tally_said *said,
                        const struct outcome_sink *sink);
 void tally_take_level(struct tally *tally, uint32_t stream, const struct level *level);
+/* A note that another source is on or off; one without effect is said. */
+void tally_take_other(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink);
 void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns);
 
 /* tally_law.c: after the fit has changed, distances and levels at 750 m go by it from now on. */

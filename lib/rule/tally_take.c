@@ -86,6 +86,24 @@ void tally_take_level(struct tally *tally, uint32_t stream, const struct level *
     sums->changed = true;
 }
 
+void tally_take_other(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
+{
+    const struct note *note = &outcome->as.event.as.note;
+    struct finding_outcome finding = {.code = "note without effect", .grade = "firm", .n_causes = 1};
+    struct tally_said unsaid;
+    bool on = strcmp(note->answer, "on") == 0;
+    if (tally->together && together_switch(tally->together, note->text, on, outcome->watch_ns) > 0) {
+        for (uint32_t i = 0; i < tally->setup.n_streams; i++)
+            tally->sums[i].changed = tally->sums[i].changed || tally->sums[i].channel > 0;
+        return;
+    }
+    snprintf(finding.job, sizeof finding.job, "%s", tally->job);
+    snprintf(finding.detail, sizeof finding.detail, "'%.60s' is no other source of the settings", note->text);
+    flow_id(outcome->run, outcome->stream, "note", outcome->counter, finding.causes[0]);
+    if (!tally->silent)
+        tally_say_finding(tally, 0, outcome->watch_ns, &finding, &unsaid, sink);
+}
+
 void tally_begin_job(struct tally *tally, const char *job, int64_t watch_ns)
 {
     tally->job_ns = watch_ns;

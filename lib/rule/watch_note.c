@@ -120,6 +120,7 @@ void note_take(struct watch *watch, const struct note *note)
         break;
     case NOTE_WEATHER:
     case NOTE_QUIETING: /* the tally's */
+    case NOTE_OTHER:
     case NOTE_MARK:
     case NOTE_REMARK:
     case NOTE_KIND_COUNT:

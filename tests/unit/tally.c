@@ -549,6 +549,16 @@ static void a_soft_start_warns_before_the_limit(void **state)
     criteria = whales;
 }
 
+static void give_other(struct tally *tally, struct said *said, int64_t at_ns, const char *name,
+                       const char *answer)
+{
+    struct event event = {.kind = EVENT_NOTE};
+    note_reset(&event.as.note, NOTE_OTHER);
+    snprintf(event.as.note.text, sizeof event.as.note.text, "%s", name);
+    snprintf(event.as.note.answer, sizeof event.as.note.answer, "%s", answer);
+    give(tally, said, event, at_ns);
+}
+
 /* A second hammer at the same place, as loud and as often: 3.0103 dB more, so (N lg r with little absorption
  * at 100 Hz) 10^(3.0103 / 15) times as far. Alone the criterion is met inside the zone of 500 m: its LF value
  * of 183 dB is met at r where 10 lg(blows) + SEL - 5.6454 - 15 lg(r / 750) = 183. With the other its lower
@@ -612,6 +622,34 @@ static void the_others_count_with_ours(void **state)
         }
         tally_destroy(tally);
     }
+    /* Off for the last 250 of 500 blows it has made half as many: 10^(10 lg 1.5 / 15) times as far. An
+     * unknown name has no effect, which is said. */
+    struct said half = {0};
+    const struct outcome_sink half_sink = {take, &half};
+    hammer.ahead_m = 0;
+    snprintf(hammer.name, sizeof hammer.name, "hammer B");
+    others = &hammer;
+    n_others = 1;
+    struct tally *switched = make_tally(750);
+    n_others = 0;
+    open_job(switched, &half, TIME_NS_PER_S);
+    for (int i = 0; i < 500; i++) {
+        give_blow(switched, &half, (int64_t)(10 + i) * TIME_NS_PER_S, 150, IMPULSE_OURS);
+        if (i == 250)
+            give_other(switched, &half, (int64_t)(10 + i) * TIME_NS_PER_S, "hammer B", "off");
+    }
+    assert_int_equal(half.n_findings, 0);
+    give_other(switched, &half, 509 * TIME_NS_PER_S, "hammer C", "off");
+    assert_int_equal(half.n_findings, 1);
+    assert_string_equal(half.findings[0].code, "note without effect");
+    tally_finish(switched, 510 * TIME_NS_PER_S, &half_sink);
+    const struct exposure_outcome *of_half = find(&half, "LF injury, impulsive, SEL");
+    double ratio = of_half->together_m / of_half->distance_m,
+           wanted = pow(10, 10 * log10(1 + pow(10, (sel_db - 150) / 10) * 250 / 500) / 15);
+    printf("# figure off for half of the time: %.4f times as far as alone, by closed form %.4f\n", ratio,
+           wanted);
+    assert_near(ratio / wanted, 1, 5e-3);
+    tally_destroy(switched);
     struct said said = {0};
     struct tally *tally = make_tally(750); /* without others there is nothing of them */
     open_job(tally, &said, TIME_NS_PER_S);
