@@ -9,6 +9,7 @@
 #include <malloc.h>
 #include <math.h>
 #include <stdlib.h>
+#include <unistd.h>
 
 static struct criteria criteria;
 
@@ -161,6 +162,37 @@ static void a_ten_hour_day(void **state)
     assert_true(lf->reached); /* 160 + 41.8 - 5.6 = 196 is above 183 */
     assert_int_equal(said.source.n_impulses, n);
     assert_near(said.source.sel_db, 160, 0.1);
+    tally_destroy(tally);
+}
+
+static double resident_mib(void)
+{
+    FILE *file = fopen("/proc/self/statm", "r");
+    long pages = 0;
+    assert_true(file && fscanf(file, "%*s %ld", &pages) == 1);
+    fclose(file);
+    return (double)pages * (double)sysconf(_SC_PAGESIZE) / 1048576;
+}
+
+/* What rule/tally.h says of its memory: that of a stream when it is made, and when a job has more impulses
+ * than are kept. Pages that were not yet written to are not resident. */
+static void memory_is_what_the_header_says(void **state)
+{
+    (void)state;
+    struct said said = {0};
+    double before_mib = resident_mib();
+    struct tally *tally = make_tally(750);
+    double made_mib = resident_mib() - before_mib;
+    open_job(tally, &said, TIME_NS_PER_S);
+    const int n = test_length() == TEST_SHORT ? 20000 : 140000;
+    for (int i = 0; i < n; i++)
+        give_blow(tally, &said, TIME_NS_PER_S + (int64_t)i * TIME_NS_PER_S / 2, 150, IMPULSE_OURS);
+    double full_mib = resident_mib() - before_mib;
+    printf("# figure a tally of one stream: %.1f MiB resident when made, %.1f MiB after %d impulses\n",
+           made_mib, full_mib, n);
+#if !defined(__SANITIZE_ADDRESS__) && !defined(__SANITIZE_THREAD__)
+    assert_true(made_mib < 25 && full_mib < 50);
+#endif
     tally_destroy(tally);
 }
 
@@ -729,6 +761,7 @@ int main(void)
         return 1;
     }
     const struct CMUnitTest tests[] = {
+        cmocka_unit_test(memory_is_what_the_header_says), /* first: memory that is given back is used again */
         cmocka_unit_test(a_ten_hour_day),
         cmocka_unit_test(each_job_begins_anew),
         cmocka_unit_test(no_range_no_distance),
