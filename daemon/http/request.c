@@ -71,7 +71,8 @@ enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, co
     return result;
 }
 
-bool http_host_allowed(const struct http *http, const char *host)
+/* Whether a Host header names this machine's loopback or a configured host. */
+static bool is_host_allowed(const struct http *http, const char *host)
 {
     char name[NOTE_NAME_SIZE];
     size_t length = host[0] == '[' ? strcspn(host, "]") + 1 : strcspn(host, ":");
@@ -118,7 +119,7 @@ static unsigned wrong(const struct http *http, struct MHD_Connection *connection
     bool post = strcmp(method, "POST") == 0;
     const char *host = header(connection, "Host");
     *out_why = "this server answers only to its own name";
-    if (!host || !http_host_allowed(http, host))
+    if (!host || !is_host_allowed(http, host))
         return MHD_HTTP_MISDIRECTED_REQUEST;
     *out_why = "only GET and POST";
     if (!post && strcmp(method, "GET") != 0)

@@ -59,9 +59,6 @@ enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, co
 /* Adds the headers that every answer has. */
 void http_add_headers(struct MHD_Response *response);
 
-/* Whether a Host header names this machine's loopback or a configured host. */
-bool http_host_allowed(const struct http *http, const char *host);
-
 /* The library's callbacks. */
 enum MHD_Result http_handle(void *context, struct MHD_Connection *connection, const char *url,
                             const char *method, const char *version, const char *upload, size_t *upload_size,

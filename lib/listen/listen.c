@@ -432,7 +432,8 @@ void listen_set_map(struct listen *listen, const struct time_map *map)
     listen->setup.map = *map;
 }
 
-void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_MAX_CLASSES][REJECT_COUNT])
+/* How many candidates each class rejected, by name; out[class_index][rejection]. */
+static void get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_MAX_CLASSES][REJECT_COUNT])
 {
     uint64_t one[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
     memset(out, 0, sizeof one);
@@ -481,7 +482,7 @@ uint32_t listen_get_accounts(const struct listen *listen, struct class_account o
 {
     const struct catalogue *catalogue = listen->setup.catalogue;
     uint64_t rejections[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
-    listen_get_rejections(listen, rejections);
+    get_rejections(listen, rejections);
     for (uint32_t c = 0; c < catalogue->n_classes; c++) {
         memcpy(out[c].name, catalogue->classes[c].name, sizeof out[c].name);
         out[c].hearable = can_hear(listen, c);

@@ -66,9 +66,6 @@ int64_t listen_get_time(const struct listen *listen);
 /* Changes the map from frames to watch time from the next block on (a live device's clock drifts). */
 void listen_set_map(struct listen *listen, const struct time_map *map);
 
-/* How many candidates each class rejected, by name; out[class_index][rejection]. */
-void listen_get_rejections(const struct listen *listen, uint64_t out[CATALOGUE_MAX_CLASSES][REJECT_COUNT]);
-
 /* What became of the sounds that a class looked at, so that "nothing found" can be explained. A sound is
  * rejected by each class that looks at it and on each channel that listens, and counts as often. */
 struct class_account {

@@ -5,16 +5,19 @@
 #include <sodium.h>
 #include <string.h>
 
+#define SHA256_SIZE 65 /* lower-case hex and its terminator */
+
 static void put_text(struct body *body, const char *key, const char *value)
 {
     body_text_or_null(body, key, value ? value : "");
 }
 
-void mark_sha256(const char *text, char out[MARK_SHA256_SIZE])
+/* In lower-case hex. */
+static void hash_text(const char *text, char out[SHA256_SIZE])
 {
     unsigned char digest[crypto_hash_sha256_BYTES];
     crypto_hash_sha256(digest, (const unsigned char *)text, strlen(text));
-    sodium_bin2hex(out, MARK_SHA256_SIZE, digest, sizeof digest);
+    sodium_bin2hex(out, SHA256_SIZE, digest, sizeof digest);
 }
 
 enum status entry_body_run(uint32_t run, const struct run_mark *mark, int64_t zero_unix_ns,
@@ -58,8 +61,8 @@ static void put_value(struct text *out, const struct permit_value *value)
 enum status entry_body_permit(uint32_t run, uint64_t counter, const struct permit *permit,
                               const char *file_text, struct text *out)
 {
-    char sha256[MARK_SHA256_SIZE];
-    mark_sha256(file_text, sha256);
+    char sha256[SHA256_SIZE];
+    hash_text(file_text, sha256);
     struct body body;
     body_begin(&body, out);
     body_bool(&body, "demonstration", permit->demonstration);

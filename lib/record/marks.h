@@ -12,8 +12,6 @@
 #include "rule/permit.h"
 #include <stdint.h>
 
-#define MARK_SHA256_SIZE 65 /* lower-case hex and its terminator */
-
 /* What a run is besides its outage. Empty texts ("" or NULL) become null. */
 struct run_facts {
     const char *site;       /* the site's name */
@@ -91,8 +89,5 @@ struct stamp_facts {
 };
 enum status entry_body_stamp(uint32_t run, uint64_t counter, const struct stamp_facts *facts,
                              struct text *out);
-
-/* SHA-256 of a text, in lower-case hex. */
-void mark_sha256(const char *text, char out[MARK_SHA256_SIZE]);
 
 #endif
