@@ -381,6 +381,7 @@ static void device_get_health(void *input, char *out, size_t size)
 }
 
 const struct input_kind input_device = {.name = "device",
+                                        .needs = {.device = true, .format = true, .most_rate_hz = 384000},
                                         .open = device_open,
                                         .read = device_read,
                                         .close = device_close,

@@ -26,9 +26,19 @@ struct input_piece {
     uint32_t n_frames;    /* 0 with lost_before > 0: only silence of the input, by the clock */
 };
 
+/* What the settings of a stream must say for a kind of input. */
+struct input_needs {
+    bool device;         /* which device: `device` */
+    bool format;         /* the sound does not say it: `rate_hz` and `channel_count` */
+    bool files;          /* at least one of `files` */
+    bool path;           /* `path` */
+    double most_rate_hz; /* the greatest `rate_hz` that it can be read at; 0: any */
+};
+
 /* One kind of input: what it is called, and how it is read. */
 struct input_kind {
     const char *name;
+    struct input_needs needs;
     bool is_file; /* can be opened to look at it, and nobody else notices */
     /* STATUS_OK and an object the caller closes, or another status after adding problems that name what is
      * wrong (file, what, what is allowed; for an unknown device the known ones). */

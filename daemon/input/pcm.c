@@ -194,6 +194,7 @@ static enum status read_pcm(void *input, float *samples, uint32_t max_frames, st
 
 const struct input_kind input_pcm = {
     .name = "pcm",
+    .needs = {.format = true},
     .open = open_pcm,
     .read = read_pcm,
     .close = close_pcm,

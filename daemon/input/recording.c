@@ -368,6 +368,7 @@ static enum status skip_recording(void *input, double seconds)
 
 const struct input_kind input_recording = {
     .name = "recording",
+    .needs = {.files = true},
     .is_file = true,
     .open = open_recording,
     .read = read_recording,

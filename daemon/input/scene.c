@@ -115,6 +115,7 @@ static enum status skip_scene(void *input, double seconds)
 
 const struct input_kind input_scene = {
     .name = "scene",
+    .needs = {.path = true},
     .is_file = true,
     .open = open_scene,
     .read = read_scene,

@@ -1,13 +1,15 @@
 /* The site's settings; see site.h. */
 #include "settings/site.h"
 #include "base/time.h"
+#include "input/input.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
+#define MAX_INPUT_KINDS 8
+
 static const char *const role_words[] = {"listen", "measure", "both"};
-static const char *const input_words[] = {"device", "recording", "pcm", "scene"};
 static const char *const format_words[] = {"s16", "s24", "s32", "f32"};
 static const char *const pace_words[] = {"real", "fast"};
 
@@ -140,34 +142,44 @@ static void read_files(struct group_reader *group, const char *folder, struct st
     }
 }
 
-/* What the chosen kind of input cannot do without. */
-static void check_stream(struct group_reader *group, const struct stream_settings *stream)
+static const struct input_kind *read_kind(struct group_reader *group)
 {
-    bool device = strcmp(stream->input, "device") == 0, pcm = strcmp(stream->input, "pcm") == 0;
-    if (device && *stream->device == '\0')
-        group_problem(group, "device", "is missing; a device input needs a name or a number");
-    if ((device || pcm) && stream->rate_hz == 0)
-        group_problem(group, "rate_hz", "is missing; a %s input needs it", stream->input);
-    if ((device || pcm) && stream->n_channels == 0)
+    const char *words[MAX_INPUT_KINDS];
+    unsigned n = 0, chosen = 0;
+    for (; n < MAX_INPUT_KINDS && input_kinds[n]; n++)
+        words[n] = input_kinds[n]->name;
+    group_word(group, "input", READER_REQUIRED, words, n, &chosen);
+    return input_kinds[chosen];
+}
+
+/* What the chosen kind of input cannot do without. */
+static void check_stream(struct group_reader *group, const struct input_kind *kind,
+                         const struct stream_settings *stream)
+{
+    const struct input_needs *needs = &kind->needs;
+    if (needs->device && *stream->device == '\0')
+        group_problem(group, "device", "is missing; a %s input needs a name or a number", kind->name);
+    if (needs->format && stream->rate_hz == 0)
+        group_problem(group, "rate_hz", "is missing; a %s input needs it", kind->name);
+    if (needs->format && stream->n_channels == 0)
         group_problem(group, "channel_count", "is missing; a %s input needs it, or a list of channels",
-                      stream->input);
-    if (device && stream->rate_hz > 384000)
-        group_problem(group, "rate_hz",
-                      "is %g; allowed: up to 384000 for a device (above it, use a pcm input)",
-                      stream->rate_hz);
-    if (strcmp(stream->input, "recording") == 0 && stream->n_files == 0)
-        group_problem(group, "files", "is missing; a recording input needs at least one");
-    if (strcmp(stream->input, "scene") == 0 && *stream->path == '\0')
-        group_problem(group, "path", "is missing; a scene input needs its file");
+                      kind->name);
+    if (needs->most_rate_hz > 0 && stream->rate_hz > needs->most_rate_hz)
+        group_problem(group, "rate_hz", "is %g; allowed: up to %.0f for a %s (above it, use a pcm input)",
+                      stream->rate_hz, needs->most_rate_hz, kind->name);
+    if (needs->files && stream->n_files == 0)
+        group_problem(group, "files", "is missing; a %s input needs at least one", kind->name);
+    if (needs->path && *stream->path == '\0')
+        group_problem(group, "path", "is missing; a %s input needs its file", kind->name);
 }
 
 static void read_stream(struct group_reader *group, const char *folder, struct stream_settings *stream)
 {
-    unsigned input = 0, format = 0, pace = 0;
+    unsigned format = 0, pace = 0;
     double channels = 0;
     stream->latency_s = 0.3;
     group_string(group, "name", READER_OPTIONAL, stream->name, sizeof stream->name);
-    group_word(group, "input", READER_REQUIRED, input_words, 4, &input);
+    const struct input_kind *kind = read_kind(group);
     group_number(group, "rate_hz", READER_OPTIONAL, 8000, 1e6, &stream->rate_hz);
     if (stream->rate_hz != floor(stream->rate_hz))
         group_problem(group, "rate_hz", "is %g; allowed: whole numbers", stream->rate_hz);
@@ -177,14 +189,14 @@ static void read_stream(struct group_reader *group, const char *folder, struct s
     group_word(group, "format", READER_OPTIONAL, format_words, 4, &format);
     read_path(group, folder, "path", READER_OPTIONAL, stream->path);
     group_word(group, "pace", READER_OPTIONAL, pace_words, 2, &pace);
-    snprintf(stream->input, sizeof stream->input, "%s", input_words[input]);
+    snprintf(stream->input, sizeof stream->input, "%s", kind->name);
     snprintf(stream->format, sizeof stream->format, "%s", format_words[format]);
     stream->n_channels = (uint32_t)channels;
     stream->real_pace = pace == 0;
     place_settings_read(group, &stream->place);
     read_files(group, folder, stream);
     read_channels(group, stream);
-    check_stream(group, stream);
+    check_stream(group, kind, stream);
     group_done(group);
 }
 
