@@ -9,8 +9,8 @@
 #include "level/field_check.h"
 #include "record/marks.h"
 #include "settings/site.h"
+#include "verb/options.h"
 #include "verb/verb.h"
-#include <getopt.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -51,9 +51,7 @@ struct check {
 
 static int wrong_use(const char *what, const char *value)
 {
-    fprintf(stderr, "hushwatch fieldcheck: %s%s\n'hushwatch fieldcheck --help' tells how it is used.\n", what,
-            value);
-    return VERB_WRONG_USE;
+    return options_wrong_use("fieldcheck", what, value);
 }
 
 static bool read_number(const char *text, double low, double high, double *out)
@@ -66,7 +64,7 @@ static bool read_number(const char *text, double low, double high, double *out)
     return true;
 }
 
-static bool read_one(struct check *check, int option, const char *text)
+static bool is_taken(struct check *check, int option, const char *text)
 {
     double number = 0;
     if (option == 'c')
@@ -83,31 +81,28 @@ static bool read_one(struct check *check, int option, const char *text)
     return option == 'c' || option == 'L' || number == floor(number);
 }
 
+static const char *take_option(void *context, int option, const char *value)
+{
+    return is_taken(context, option, value) ? NULL : "no good value: ";
+}
+
 static int read_options(int argc, char **argv, struct check *check)
 {
-    static const struct option options[] = {{"config", required_argument, NULL, 'c'},
-                                            {"stream", required_argument, NULL, 's'},
-                                            {"channel", required_argument, NULL, 'n'},
-                                            {"level", required_argument, NULL, 'd'},
-                                            {"frequency", required_argument, NULL, 'f'},
-                                            {"ledger", required_argument, NULL, 'L'},
-                                            {"help", no_argument, NULL, 'h'},
-                                            {NULL, 0, NULL, 0}};
-    int option;
-    opterr = 0;
-    while ((option = getopt_long(argc, argv, "", options, NULL)) != -1) {
-        if (option == 'h') {
-            fputs(help, stdout);
-            return -1;
-        }
-        if (option == '?')
-            return wrong_use("unknown option or missing value: ", argv[optind - 1]);
-        if (!read_one(check, option, optarg))
-            return wrong_use("no good value: ", optarg);
-    }
-    if (optind + 1 != argc)
+    static const struct option known[] = {{"config", required_argument, NULL, 'c'},
+                                          {"stream", required_argument, NULL, 's'},
+                                          {"channel", required_argument, NULL, 'n'},
+                                          {"level", required_argument, NULL, 'd'},
+                                          {"frequency", required_argument, NULL, 'f'},
+                                          {"ledger", required_argument, NULL, 'L'},
+                                          {"help", no_argument, NULL, 'h'},
+                                          {NULL, 0, NULL, 0}};
+    int rest, code = options_read(&(struct options_reading){"fieldcheck", help, known, take_option, check},
+                                  argc, argv, &rest);
+    if (code != VERB_GOOD)
+        return code;
+    if (rest + 1 != argc)
         return wrong_use("give one recording", "");
-    check->recording = argv[optind];
+    check->recording = argv[rest];
     if (!check->config || !check->stream || !check->channel || isnan(check->level_db) ||
         isnan(check->frequency_hz))
         return wrong_use("--config, --stream, --channel, --level and --frequency are all needed", "");

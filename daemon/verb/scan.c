@@ -2,8 +2,9 @@
  * ledger. */
 #include "base/time.h"
 #include "chain.h"
+#include "input/input.h"
+#include "verb/options.h"
 #include "verb/verb.h"
-#include <getopt.h>
 #include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -49,43 +50,42 @@ static void interrupt(int signal_number)
 
 static int wrong_use(const char *what, const char *value)
 {
-    fprintf(stderr, "hushwatch scan: %s%s\n'hushwatch scan --help' tells how it is used.\n", what, value);
-    return VERB_WRONG_USE;
+    return options_wrong_use("scan", what, value);
+}
+
+static const char *take_option(void *context, int option, const char *value)
+{
+    struct scan *scan = context;
+    if (option == 'c')
+        scan->config = value;
+    else if (option == 'l')
+        scan->ledger = value;
+    else if (option == 'n')
+        scan->notes_path = value;
+    else if (option == 's')
+        scan->start = value;
+    else if (option == 'e')
+        scan->explain = true;
+    else if (strcmp(value, "real") != 0 && strcmp(value, "fast") != 0)
+        return "--pace is real or fast, not ";
+    else
+        scan->real_pace = strcmp(value, "real") == 0;
+    return NULL;
 }
 
 static int read_options(int argc, char **argv, struct scan *scan)
 {
-    static const struct option options[] = {
+    static const struct option known[] = {
         {"config", required_argument, NULL, 'c'}, {"ledger", required_argument, NULL, 'l'},
         {"start", required_argument, NULL, 's'},  {"notes", required_argument, NULL, 'n'},
         {"pace", required_argument, NULL, 'p'},   {"explain", no_argument, NULL, 'e'},
         {"help", no_argument, NULL, 'h'},         {NULL, 0, NULL, 0}};
-    int option;
-    opterr = 0;
-    while ((option = getopt_long(argc, argv, "", options, NULL)) != -1) {
-        if (option == 'h') {
-            fputs(help, stdout);
-            return -1;
-        }
-        if (option == 'c')
-            scan->config = optarg;
-        else if (option == 'l')
-            scan->ledger = optarg;
-        else if (option == 'n')
-            scan->notes_path = optarg;
-        else if (option == 's')
-            scan->start = optarg;
-        else if (option == 'e')
-            scan->explain = true;
-        else if (option == 'p' && (strcmp(optarg, "real") == 0 || strcmp(optarg, "fast") == 0))
-            scan->real_pace = strcmp(optarg, "real") == 0;
-        else if (option == 'p')
-            return wrong_use("--pace is real or fast, not ", optarg);
-        else
-            return wrong_use("unknown option or missing value: ", argv[optind - 1]);
-    }
-    scan->recordings = argv + optind;
-    scan->n_recordings = argc - optind;
+    int rest, code = options_read(&(struct options_reading){"scan", help, known, take_option, scan}, argc,
+                                  argv, &rest);
+    if (code != VERB_GOOD)
+        return code;
+    scan->recordings = argv + rest;
+    scan->n_recordings = argc - rest;
     if (!scan->config || !scan->ledger)
         return wrong_use(scan->config ? "--ledger is missing" : "--config is missing", "");
     if (scan->start && time_parse_utc(scan->start, &scan->start_unix_ns) != STATUS_OK)
@@ -104,7 +104,7 @@ static void choose_inputs(struct scan *scan)
         return;
     struct stream_settings *stream = &site->streams[0];
     site->n_streams = 1;
-    if (strcmp(stream->input, "device") == 0)
+    if (input_find(stream->input)->needs.format)
         stream->rate_hz = 0; /* the recording's own */
     snprintf(stream->input, sizeof stream->input, "recording");
     stream->n_files = (uint32_t)scan->n_recordings;
