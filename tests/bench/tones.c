@@ -1,7 +1,7 @@
 /* What the tone tracer costs: ns a sample and channel on Gaussian noise with a call every 2 s, as JSON. */
 #include "call/tones.h"
 #include "base/random.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -55,12 +55,9 @@ static void run(const struct catalogue *catalogue, double rate_hz)
 
 int main(void)
 {
-    struct problems problems = {0};
     static struct catalogue catalogue;
-    if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK) {
-        fputs(problems.lines.data ? problems.lines.data : "", stderr);
+    if (!test_load_catalogue(&catalogue))
         return 2;
-    }
     run(&catalogue, 48000);
     run(&catalogue, 192000);
     run(&catalogue, 384000);

@@ -3,7 +3,7 @@
 #include "support/test.h"
 
 #include "call/tones.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <sndfile.h>
 #include <stdlib.h>
@@ -26,13 +26,8 @@ struct calls {
 
 static struct catalogue *load_catalogue(void)
 {
-    struct problems problems = {0};
     struct catalogue *catalogue = calloc(1, sizeof *catalogue);
-    enum status status = catalogue_load("config/calls", &problems, NULL, catalogue);
-    if (status != STATUS_OK)
-        print_error("%s", problems.lines.data);
-    problems_destroy(&problems);
-    assert_int_equal(status, STATUS_OK);
+    assert_true(catalogue && test_load_catalogue(catalogue));
     return catalogue;
 }
 

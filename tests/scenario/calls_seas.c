@@ -6,7 +6,7 @@
 
 #include "bench/calls/calls.h"
 #include "bench/calls/match.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -171,10 +171,7 @@ static void calls_are_matched_one_to_one(void **state)
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
-    enum status status = catalogue_load("config/calls", &problems, NULL, &catalogue);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(&catalogue) ? 0 : -1;
 }
 
 int main(void)

@@ -5,7 +5,7 @@
 #include "support/test.h"
 
 #include "bench/calls/calls.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -53,10 +53,7 @@ static void tones_are_found_near_the_ideal(void **state)
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
-    enum status status = catalogue_load("config/calls", &problems, NULL, &catalogue);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(&catalogue) ? 0 : -1;
 }
 
 int main(void)

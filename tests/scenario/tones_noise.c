@@ -5,7 +5,7 @@
 
 #include "base/random.h"
 #include "call/tones.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -59,9 +59,8 @@ static double poisson_tail(double mean, uint32_t n)
 static void noise_makes_no_more_calls_than_stated(void **state)
 {
     (void)state;
-    struct problems problems = {0};
     struct catalogue *catalogue = calloc(1, sizeof *catalogue);
-    assert_int_equal(catalogue_load("config/calls", &problems, NULL, catalogue), STATUS_OK);
+    assert_true(catalogue && test_load_catalogue(catalogue));
     const uint32_t n_stretches = test_length() == TEST_LONG ? 40 : test_length() == TEST_SHORT ? 1 : 10;
     const double seconds = test_length() == TEST_SHORT ? 60 : STRETCH_S;
     struct counts counts = {0};

@@ -241,23 +241,6 @@ static void no_mask_is_longer_than_it_may_be(void **state)
     gate_destroy(NULL);
 }
 
-static void cost(void **state)
-{
-    (void)state;
-    struct gate *gate;
-    assert_int_equal(gate_create(192000, 2, &gate), STATUS_OK);
-    gate_reset(gate, 0);
-    struct scene *scene = scene_create(20, 7);
-    struct timespec start, end;
-    clock_gettime(CLOCK_PROCESS_CPUTIME_ID, &start);
-    gate_push(gate, scene->x, (uint32_t)scene->n, NULL);
-    clock_gettime(CLOCK_PROCESS_CPUTIME_ID, &end);
-    double ns = 1e9 * (double)(end.tv_sec - start.tv_sec) + (double)(end.tv_nsec - start.tv_nsec);
-    printf("# figure gate at 192 kHz: %.2f ns a sample\n", ns / (double)scene->n);
-    scene_destroy(scene);
-    gate_destroy(gate);
-}
-
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -267,7 +250,6 @@ int main(void)
         cmocka_unit_test(a_late_burst_is_taken_along),
         cmocka_unit_test(long_sounds_and_chunks),
         cmocka_unit_test(no_mask_is_longer_than_it_may_be),
-        cmocka_unit_test(cost),
     };
     return cmocka_run_group_tests_name("gate", tests, NULL, NULL);
 }

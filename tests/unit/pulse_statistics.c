@@ -8,7 +8,7 @@
 #include "call/pulses.h"
 #include "call/tied.h"
 #include "call/trigger.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include "support/clicks.h"
 #include "support/finder.h"
 #include "support/ideal.h"
@@ -382,12 +382,7 @@ static void random_pulses_give_no_more_trains_than_stated(void **state)
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
-    enum status status = catalogue_load("config/calls", &problems, NULL, &catalogue);
-    if (status != STATUS_OK)
-        print_error("%s\n", problems.lines.data);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(&catalogue) ? 0 : -1;
 }
 
 int main(void)

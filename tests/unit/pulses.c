@@ -507,40 +507,6 @@ static void hidden_pulses_make_no_train(void **state)
     }
 }
 
-static double cpu_s(void)
-{
-    struct timespec now;
-    clock_gettime(CLOCK_PROCESS_CPUTIME_ID, &now);
-    return (double)now.tv_sec + 1e-9 * (double)now.tv_nsec;
-}
-
-/* Quiet: noise. Busy: 200 pulses a second a tenth of the time. */
-static void cost(void **state)
-{
-    (void)state;
-    static const double rates_hz[] = {96000, 192000, 384000};
-    for (int r = 0; r < 3; r++)
-        for (int busy = 0; busy < 2; busy++) {
-            struct hearing *hearing = listen_for(rates_hz[r], 10, 3);
-            if (busy)
-                for (double t = 4; t < 5; t += random_exponential(&hearing->random) / 200)
-                    clicks_add_gabor(hearing->x, hearing->n, rates_hz[r], t * rates_hz[r], 0.05, 40e3, 9e-6);
-            struct pulses *pulses;
-            assert_int_equal(pulses_create(catalogue.classes, catalogue.n_classes, rates_hz[r], &pulses),
-                             STATUS_OK);
-            pulses_reset(pulses, 0);
-            hearing->pulses = pulses;
-            struct found_sink sink = {take, hearing};
-            double start = cpu_s();
-            for (size_t at = 0; at + 4096 <= hearing->n; at += 4096)
-                pulses_push(pulses, hearing->x + at, 4096, &sink);
-            printf("# figure cost at %.0f kHz, %s: %.2f ns a sample\n", rates_hz[r] / 1000,
-                   busy ? "busy" : "quiet", (cpu_s() - start) * 1e9 / (double)hearing->n);
-            pulses_destroy(pulses);
-            done(hearing);
-        }
-}
-
 static int load(void **state)
 {
     (void)state;
@@ -566,7 +532,6 @@ int main(void)
         cmocka_unit_test(a_rate_says_what_it_cannot_hear),
         cmocka_unit_test(bad_samples_pass),
         cmocka_unit_test(hidden_pulses_make_no_train),
-        cmocka_unit_test(cost),
     };
     return cmocka_run_group_tests_name("pulses", tests, load, NULL);
 }

@@ -4,7 +4,7 @@
 
 #include "base/random.h"
 #include "call/tones.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -21,11 +21,8 @@ static struct catalogue *catalogue; /* shipped; loaded once */
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
     catalogue = calloc(1, sizeof *catalogue);
-    enum status status = catalogue_load("config/calls", &problems, NULL, catalogue);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(catalogue) ? 0 : -1;
 }
 
 static int unload(void **state)

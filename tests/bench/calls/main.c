@@ -9,7 +9,7 @@
  *   SCALE     of the lengths and numbers of trials: 1; more checks the single pulses' noise law too */
 #include "bench/calls/calls.h"
 #include "float_mode.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <glob.h>
 #include <sodium.h>
 #include <stdio.h>
@@ -191,7 +191,6 @@ static bool run(const struct bench *bench, const char *name)
 int main(int argc, char **argv)
 {
     static struct catalogue catalogue;
-    struct problems problems = {0};
     struct bench bench = {.folder = argc > 1 ? argv[1] : "build/bench-calls",
                           .budget_s = argc > 5 ? atof(argv[5]) : 1200,
                           .setup = {.catalogue = &catalogue,
@@ -200,10 +199,7 @@ int main(int argc, char **argv)
     if (bench.setup.seed == 0)
         bench.setup.seed = (uint64_t)time(NULL) / 86400;
     float_mode_flush_to_zero();
-    if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
-        !find_digest(bench.digest)) {
-        fputs(problems.lines.data ? problems.lines.data : "no catalogue\n", stderr);
+    if (!test_load_catalogue(&catalogue) || !find_digest(bench.digest))
         return 3;
-    }
     return run(&bench, argc > 2 ? argv[2] : "all") ? 0 : 1;
 }
