@@ -9,7 +9,14 @@
 #define PATH_SIZE 1024
 #define FREE_SWEEP_HZ 1e6 /* stands for "no limit" in a file */
 
-static const char *const forms[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train"};
+static const char *const forms[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train", [CALL_NOISE] = "noise"};
+
+static const char *const manners[MANNER_COUNT] = {
+    [MANNER_NONE] = "",         [MANNER_BURST] = "burst",     [MANNER_HOPS] = "hops",
+    [MANNER_LINE] = "line",     [MANNER_PICK_UP] = "pick-up", [MANNER_FLOW] = "flow",
+    [MANNER_BEATS] = "beats",   [MANNER_HUMP] = "hump",       [MANNER_SNAPS] = "snaps",
+    [MANNER_RHYTHM] = "rhythm", [MANNER_IMPULSE] = "impulse",
+};
 
 /* low < high, at the higher one's key. */
 static void check_order(struct group_reader *group, double low, double high, const char *low_key,
@@ -99,6 +106,29 @@ static void read_train(struct group_reader *group, struct train_shape *train)
         check_order(group, train->upper_low_hz, train->upper_high_hz, "upper_low_hz", "upper_high_hz");
 }
 
+static void read_sound(struct group_reader *group, struct other_shape *sound)
+{
+    unsigned manner = 0;
+    double repeats = 0, harmonics = 0;
+    if (group_word(group, "manner", READER_REQUIRED, manners + 1, MANNER_COUNT - 1, &manner))
+        sound->manner = (enum manner)(manner + 1);
+    group_number(group, "min_snr_db", READER_OPTIONAL, 0, 60, &sound->min_snr_db);
+    group_number(group, "min_s", READER_OPTIONAL, 0, 600, &sound->min_s);
+    group_number(group, "max_s", READER_OPTIONAL, 0, 600, &sound->max_s);
+    group_number(group, "max_extent_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &sound->max_extent_hz);
+    group_number(group, "min_repeats", READER_OPTIONAL, 1, 64, &repeats);
+    group_number(group, "memory_s", READER_OPTIONAL, 0, 600, &sound->memory_s);
+    group_number(group, "low_rate_hz", READER_OPTIONAL, 0, 1000, &sound->low_rate_hz);
+    group_number(group, "high_rate_hz", READER_OPTIONAL, 0, 1000, &sound->high_rate_hz);
+    group_number(group, "min_harmonics", READER_OPTIONAL, 0, 20, &harmonics);
+    sound->min_repeats = (uint32_t)repeats;
+    sound->min_harmonics = (uint32_t)harmonics;
+    if (sound->max_s > 0 || sound->min_s > 0)
+        check_order(group, sound->min_s, sound->max_s, "min_s", "max_s");
+    if (sound->high_rate_hz > 0 || sound->low_rate_hz > 0)
+        check_order(group, sound->low_rate_hz, sound->high_rate_hz, "low_rate_hz", "high_rate_hz");
+}
+
 static void read_class(struct group_reader *root, struct call_class *class)
 {
     const char *groups[GROUP_COUNT];
@@ -109,7 +139,7 @@ static void read_class(struct group_reader *root, struct call_class *class)
     if (group_string(root, "name", READER_REQUIRED, class->name, sizeof class->name) && !*class->name)
         group_problem(root, "name", "is empty; allowed: 1 to %d bytes", CALL_CLASS_SIZE - 1);
     group_word(root, "group", READER_REQUIRED, groups, GROUP_COUNT, &group);
-    bool has_form = group_word(root, "form", READER_REQUIRED, forms, 2, &form);
+    bool has_form = group_word(root, "form", READER_REQUIRED, forms, 3, &form);
     class->group = (enum group)group;
     class->form = (enum call_form)form;
     group_flag(root, "animal", READER_OPTIONAL, &class->animal);
@@ -122,8 +152,12 @@ static void read_class(struct group_reader *root, struct call_class *class)
     group_number(root, "evidence", READER_REQUIRED, -20, 20, &class->evidence);
     group_string(root, "source", READER_REQUIRED, class->source, sizeof class->source);
     struct group_reader shape;
-    if (has_form && group_child(root, forms[form], READER_REQUIRED, &shape)) {
-        if (form == CALL_TONE)
+    if (class->animal && form == CALL_NOISE)
+        group_problem(root, "form", "is \"noise\"; allowed of an animal: tone, train");
+    else if (has_form && group_child(root, class->animal ? forms[form] : "sound", READER_REQUIRED, &shape)) {
+        if (!class->animal)
+            read_sound(&shape, &class->sound);
+        else if (form == CALL_TONE)
             read_tone(&shape, &class->tone);
         else
             read_train(&shape, &class->train);

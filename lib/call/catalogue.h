@@ -46,6 +46,34 @@ struct train_shape {
     double tail_s; /* and within this, what is 10 dB weaker */
 };
 
+/* How a sound that is no animal's is recognised; call/others.h says each in full. */
+enum manner {
+    MANNER_NONE,    /* as a tone or a train: an animal's */
+    MANNER_BURST,   /* a straight tone that comes again alike */
+    MANNER_HOPS,    /* equal chips of tone, one after the other, that hop in frequency */
+    MANNER_LINE,    /* a line that lasts */
+    MANNER_PICK_UP, /* a line that all channels have at the same moment and equally loud */
+    MANNER_FLOW,    /* steep low noise that each hydrophone has for itself */
+    MANNER_BEATS,   /* noise that swells regularly */
+    MANNER_HUMP,    /* steady noise that is louder in its band than below it */
+    MANNER_SNAPS,   /* many sharp pulses in no rhythm */
+    MANNER_RHYTHM,  /* pulses whose rhythm is too steady for an animal (call/trains.h) */
+    MANNER_IMPULSE, /* an impulse that stands alone (level/impulses.h) */
+    MANNER_COUNT
+};
+
+/* Limits of such a sound; 0 where a manner has no use for one. */
+struct other_shape {
+    enum manner manner;
+    double min_snr_db;    /* over what is usual there */
+    double min_s, max_s;  /* of one burst or chip; of an impulse T90; how long a line has lasted */
+    double max_extent_hz; /* how far a burst may sweep, in a straight line */
+    uint32_t min_repeats; /* bursts alike ... */
+    double memory_s;      /* ... within so long; an impulse stands alone for so long; chips in a block */
+    double low_rate_hz, high_rate_hz; /* swells or snaps a second */
+    uint32_t min_harmonics;           /* of a line */
+};
+
 struct call_class {
     char name[CALL_CLASS_SIZE];
     enum group group;
@@ -59,6 +87,7 @@ struct call_class {
     char source[CATALOGUE_TEXT_SIZE]; /* where the figures come from, with their marks */
     struct tone_shape tone;           /* of a tone */
     struct train_shape train;         /* of a train */
+    struct other_shape sound;         /* of what is no animal's: instead of both */
 };
 
 struct catalogue {

@@ -47,7 +47,8 @@ struct ear {
 struct pulses {
     double rate_hz;
     uint64_t first_frame;
-    uint32_t n_stages, n_ears;
+    uint32_t n_stages, n_ears, n_classes;
+    const struct call_class *classes; /* borrowed */
     struct stage stages[MAX_STAGES];
     struct ear ears[CATALOGUE_MAX_CLASSES];
     float decimated[PIECE_FRAMES + 1];
@@ -77,8 +78,8 @@ static bool is_hearable(const struct call_class *call_class, double rate_hz)
 {
     struct band_edges band = {call_class->low_hz, call_class->high_hz};
     struct band_edges guard = {call_class->train.guard_low_hz, call_class->train.guard_high_hz};
-    return call_class->form == CALL_TRAIN && bands_rate_carries(rate_hz, band) &&
-           (guard.high_hz <= 0 || bands_rate_carries(rate_hz, guard));
+    return call_class->form == CALL_TRAIN && call_class->sound.manner == MANNER_NONE &&
+           bands_rate_carries(rate_hz, band) && (guard.high_hz <= 0 || bands_rate_carries(rate_hz, guard));
 }
 
 /* Index of a band in a stage's list, added where it is new; BANDS_MAX when the list is full. */
@@ -191,6 +192,8 @@ enum status pulses_create(const struct call_class *classes, uint32_t n_classes, 
     if (!pulses)
         return STATUS_NO_MEMORY;
     pulses->rate_hz = rate_hz;
+    pulses->classes = classes;
+    pulses->n_classes = n_classes;
     enum status status = STATUS_OK;
     for (uint32_t c = 0; c < n_classes && status == STATUS_OK; c++)
         if (is_hearable(&classes[c], rate_hz))
@@ -230,18 +233,34 @@ struct hearing {
     struct ear *ear;
 };
 
+/* The catalogue's class of machines' rhythms for pulses of that centroid; n_classes: none. */
+static uint32_t machine_class(const struct pulses *pulses, const struct ear *ear, const struct train *train)
+{
+    double hz = train->centroid_hz;
+    if (!(hz > 0))
+        hz = (ear->call_class->low_hz + ear->call_class->high_hz) / 2;
+    for (uint32_t c = 0; c < pulses->n_classes; c++)
+        if (pulses->classes[c].sound.manner == MANNER_RHYTHM && hz >= pulses->classes[c].low_hz &&
+            hz <= pulses->classes[c].high_hz)
+            return c;
+    return pulses->n_classes;
+}
+
 static void take_train(void *context, const struct train *train)
 {
     const struct hearing *hearing = context;
     struct ear *ear = hearing->ear;
-    if (!train_fits(train, &ear->call_class->train)) {
+    uint32_t c = train->machine ? machine_class(hearing->pulses, ear, train) : ear->class_index;
+    if (c == hearing->pulses->n_classes)
+        return;
+    if (!train->machine && !train_fits(train, &ear->call_class->train)) {
         ear->rejections[REJECT_SHAPE]++;
         return;
     }
     double half = ear->call_class->train.pulse_s * hearing->pulses->rate_hz / 2;
     double first = (double)hearing->pulses->first_frame;
     struct found_call found = {
-        .class_index = ear->class_index,
+        .class_index = c,
         .start_frame = first + fmax(0, train->start_frame - half),
         .end_frame = first + train->end_frame + half,
         .known_frame = hearing->pulses->known_frame,

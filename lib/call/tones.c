@@ -59,7 +59,8 @@ static void take_contour(void *context, enum trace_end end, const struct contour
 static bool carries(const struct call_class *class, double rate_hz)
 {
     double high = fmin(class->high_hz, CARRIED * rate_hz);
-    return class->form == CALL_TONE && high - class->low_hz >= 0.5 * (class->high_hz - class->low_hz);
+    return class->form == CALL_TONE && class->sound.manner == MANNER_NONE &&
+           high - class->low_hz >= 0.5 * (class->high_hz - class->low_hz);
 }
 
 /* How much the class lets through: octaves of frequency times octaves of duration, less where it wants a

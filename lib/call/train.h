@@ -10,6 +10,7 @@
 /* One piece of a train; `members` are the numbers of its pulses, counted from 0 in the order in which they
  * were pushed. */
 struct train {
+    bool machine;    /* its rhythm is too steady for an animal */
     uint32_t number; /* of the train: pieces of one train share it; from 1 */
     double start_frame, end_frame;
     double interval_frames; /* median between neighbouring pulses (a missed one accounted for) */

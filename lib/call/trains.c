@@ -113,8 +113,8 @@ static void give(struct trains *trains, struct open_train *open, const struct tr
     train_describe(&pulses, trains->sorted, trains->arrivals, &train);
     open->given = open->last;
     open->given_time_s = trains_node(trains, open->last)->time_s;
-    if (!steady)
-        sink->take(sink->context, &train);
+    train.machine = steady;
+    sink->take(sink->context, &train);
 }
 
 /* Opens a train for the chain that ends with link `best` of the newest pulse, if it is one. */

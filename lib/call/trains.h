@@ -17,8 +17,8 @@
  * end (once 3.3 intervals have passed without a pulse) if at least 3 pulses are new. So a sperm whale that
  * clicks for an hour is a call each 10 s.
  *
- * A rhythm steadier than min_jitter is a machine's: such a train is held until it has 10 pulses, then dropped
- * under that name, and its pulses with it. */
+ * A rhythm steadier than min_jitter is a machine's: such a train is held until it has 10 pulses, then counted
+ * under that name and given as a machine's (train.machine), and its pulses with it. */
 #ifndef CALL_TRAINS_H
 #define CALL_TRAINS_H
 

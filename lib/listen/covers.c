@@ -36,10 +36,15 @@ static bool shares_rhythm(const struct found_call *sound, const struct found_cal
     return whole <= MOST_MULTIPLE && fabs(fmax(ratio, 1 / ratio) / whole - 1) <= RHYTHM_ERROR;
 }
 
-/* Frames of the call that the sound covers. */
-static double covered_frames(const struct found_call *sound, const struct found_call *call)
+/* Frames of the call that the sound covers. A train is as wide as its class's band: the edges of bursts and
+ * chips in it make pulses there. */
+static double covered_frames(const struct covers *covers, const struct found_call *sound,
+                             const struct found_call *call)
 {
-    if (!shares_band(sound, call) || !shares_rhythm(sound, call))
+    enum manner manner = covers->classes[sound->class_index].sound.manner;
+    bool edges = (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses > 0 &&
+                 sound->high_hz >= call->low_hz && sound->low_hz <= call->high_hz;
+    if (!edges && (!shares_band(sound, call) || !shares_rhythm(sound, call)))
         return 0;
     return fmax(0, fmin(sound->end_frame, call->end_frame) - fmax(sound->start_frame, call->start_frame));
 }
@@ -58,7 +63,7 @@ double covers_evidence(const struct covers *covers, const struct found_call *cal
 {
     double evidence = covers->classes[call->class_index].evidence, frames = 0, taken = 0;
     for (uint32_t i = 0; i < remembered(covers->n_sounds); i++) {
-        double more = covered_frames(&covers->sounds[i], call);
+        double more = covered_frames(covers, &covers->sounds[i], call);
         frames += more;
         if (more > 0)
             taken = fmax(taken, -covers->classes[covers->sounds[i].class_index].evidence);
@@ -81,10 +86,10 @@ uint32_t covers_take_sound(struct covers *covers, const struct joined_call *soun
     for (uint32_t i = 0; i < remembered(covers->n_calls) && n < CALL_MAX_AGAINST; i++) {
         struct covered_call *call = &covers->calls[i];
         double frames = 0;
-        if (call->counter == 0 || covered_frames(&sound->found, &call->found) <= 0)
+        if (call->counter == 0 || covered_frames(covers, &sound->found, &call->found) <= 0)
             continue;
         for (uint32_t k = 0; k < remembered(covers->n_sounds); k++)
-            frames += covered_frames(&covers->sounds[k], &call->found);
+            frames += covered_frames(covers, &covers->sounds[k], &call->found);
         if (!is_enough(frames, &call->found))
             continue;
         out_against[n++] = call->counter;

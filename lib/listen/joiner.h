@@ -7,7 +7,7 @@
 #include <stdbool.h>
 #include <stdint.h>
 
-#define JOINER_HELD 64
+#define JOINER_HELD 160
 #define JOINER_REMEMBERED 64
 
 struct joined_call {

@@ -1,0 +1,488 @@
+/* Lines that last, pick-up, flow; see lines.h. */
+#include "call/lines.h"
+#include "base/units.h"
+#include "dsp/decimate.h"
+#include "dsp/spectrum.h"
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define PERIOD_S 2.0
+#define STAND_OUT 4.0 /* 6 dB */
+#define NEAR 3        /* bins beside a line that it must stand above: from here ... */
+#define FAR 10        /* ... to here */
+#define MAX_LINES 48
+#define MOST_TOLD 16 /* lines of one period */
+#define SLOW_N 4096
+#define SLOW_BINS (SLOW_N / 4 + 1) /* of which the phase is known */
+#define SAME 0.02                  /* power of the difference of two channels that are the same */
+#define TELL_S 10.0
+#define FAMILY_ERROR 0.006
+#define MOST_HARMONICS 12
+#define FLOW_COHERENCE 0.2
+#define FLOW_POWER 2.2 /* of frequency, from 20 to 100 Hz */
+
+/* Mean spectra of one resolution. */
+struct means {
+    uint32_t n_bins, n;    /* spectra summed */
+    double bin_hz, frames; /* period, in frames of the stream */
+    uint64_t start_frame;
+    float *sum;   /* [n_bins] */
+    uint8_t *age; /* [n_bins]: periods in a row with a line here */
+};
+
+struct line {
+    double hz, ratio, power;
+    uint32_t bin, age;
+    bool same; /* on both channels */
+};
+
+struct lines {
+    struct other_setup setup;
+    struct means fast, slow;
+    uint32_t factor, filled;
+    double slow_rate_hz;
+    struct decimator *decimators[2];
+    struct spectrum *spectrum;
+    float *held[2];                     /* [SLOW_N] */
+    float *power;                       /* [SLOW_N / 2 + 1] */
+    float *bins[2];                     /* [2 * SLOW_BINS] */
+    float *scratch;                     /* decimated samples of a frame */
+    float *cross;                       /* [4 * SLOW_BINS]: sums of re, im of the product, and both powers */
+    float *unlike;                      /* [SLOW_BINS]: sum of the power of the difference */
+    double told[CATALOGUE_MAX_CLASSES]; /* frame of the last word */
+    uint32_t flow_periods;
+};
+
+static enum status create_means(struct means *means, uint32_t n_bins, double bin_hz)
+{
+    means->n_bins = n_bins;
+    means->bin_hz = bin_hz;
+    means->sum = calloc(n_bins, sizeof *means->sum);
+    means->age = calloc(n_bins, sizeof *means->age);
+    return means->sum && means->age ? STATUS_OK : STATUS_NO_MEMORY;
+}
+
+static enum status fill(struct lines *lines)
+{
+    const struct other_setup *setup = &lines->setup;
+    enum status status = create_means(&lines->fast, setup->n / 2 + 1, setup->bin_hz);
+    if (status == STATUS_OK)
+        status = create_means(&lines->slow, SLOW_N / 2 + 1, lines->slow_rate_hz / SLOW_N);
+    for (uint32_t i = 0; i < (setup->pair ? 2 : 1) && status == STATUS_OK; i++) {
+        status = decimator_create(lines->factor, &lines->decimators[i]);
+        lines->held[i] = calloc(SLOW_N, sizeof(float));
+        lines->bins[i] = calloc(2 * SLOW_BINS, sizeof(float));
+        if (status == STATUS_OK && (!lines->held[i] || !lines->bins[i]))
+            status = STATUS_NO_MEMORY;
+    }
+    if (status == STATUS_OK)
+        status = spectrum_create(SLOW_N, WINDOW_HANN, &lines->spectrum);
+    lines->power = calloc(SLOW_N / 2 + 1, sizeof(float));
+    lines->cross = calloc(4 * SLOW_BINS, sizeof(float));
+    lines->unlike = calloc(SLOW_BINS, sizeof(float));
+    lines->scratch = calloc(setup->n / lines->factor + 2, sizeof(float));
+    if (status == STATUS_OK && (!lines->power || !lines->cross || !lines->unlike || !lines->scratch))
+        status = STATUS_NO_MEMORY;
+    return status;
+}
+
+enum status lines_create(const struct other_setup *setup, struct lines **out)
+{
+    struct lines *lines = calloc(1, sizeof *lines);
+    if (!lines)
+        return STATUS_NO_MEMORY;
+    lines->setup = *setup;
+    lines->factor = 1;
+    while (setup->rate_hz / (2.0 * lines->factor) >= 4000)
+        lines->factor *= 2;
+    lines->slow_rate_hz = setup->rate_hz / lines->factor;
+    enum status status = fill(lines);
+    if (status != STATUS_OK) {
+        lines_destroy(lines);
+        return status;
+    }
+    lines_reset(lines, 0);
+    *out = lines;
+    return STATUS_OK;
+}
+
+void lines_destroy(struct lines *lines)
+{
+    if (!lines)
+        return;
+    for (int i = 0; i < 2; i++) {
+        decimator_destroy(lines->decimators[i]);
+        free(lines->held[i]);
+        free(lines->bins[i]);
+    }
+    struct means *means[] = {&lines->fast, &lines->slow};
+    for (int i = 0; i < 2; i++) {
+        free(means[i]->sum);
+        free(means[i]->age);
+    }
+    spectrum_destroy(lines->spectrum);
+    free(lines->power);
+    free(lines->cross);
+    free(lines->unlike);
+    free(lines->scratch);
+    free(lines);
+}
+
+static void clear(struct lines *lines, struct means *means, uint64_t frame)
+{
+    memset(means->sum, 0, means->n_bins * sizeof *means->sum);
+    means->n = 0;
+    means->start_frame = frame;
+    if (means == &lines->slow) {
+        memset(lines->cross, 0, 4 * SLOW_BINS * sizeof *lines->cross);
+        memset(lines->unlike, 0, SLOW_BINS * sizeof *lines->unlike);
+    }
+}
+
+void lines_reset(struct lines *lines, uint64_t next_frame)
+{
+    struct means *means[] = {&lines->fast, &lines->slow};
+    for (int i = 0; i < 2; i++) {
+        clear(lines, means[i], next_frame);
+        memset(means[i]->age, 0, means[i]->n_bins);
+    }
+    for (int i = 0; i < (lines->setup.pair ? 2 : 1); i++)
+        decimator_reset(lines->decimators[i]);
+    for (uint32_t c = 0; c < lines->setup.n_classes; c++)
+        lines->told[c] = -INFINITY;
+    lines->filled = 0;
+    lines->flow_periods = 0;
+}
+
+/* ---- telling */
+
+static double beside(const float *sum, uint32_t bin)
+{
+    double low = 0, high = 0;
+    for (uint32_t k = NEAR; k <= FAR; k++) {
+        low += sum[bin - k];
+        high += sum[bin + k];
+    }
+    return fmax(low, high) / (FAR - NEAR + 1); /* the louder side: an edge is no line */
+}
+
+/* Lines of the period, in rising frequency; ages each. */
+static uint32_t find_lines(struct means *means, double low_hz, double high_hz, struct line out[MAX_LINES])
+{
+    uint32_t n = 0;
+    uint32_t first = (uint32_t)fmax(FAR + 1, ceil(low_hz / means->bin_hz));
+    uint32_t end = (uint32_t)fmin(means->n_bins - FAR - 1.0, high_hz / means->bin_hz);
+    uint8_t before = 0; /* age of the bin below, before this period */
+    for (uint32_t i = first; i < end; i++) {
+        const float *sum = means->sum;
+        uint8_t was = means->age[i], here = was > before ? was : before;
+        here = means->age[i + 1] > here ? means->age[i + 1] : here;
+        before = was;
+        double rest = beside(sum, i);
+        means->age[i] = 0;
+        if (sum[i] < sum[i - 1] || sum[i] <= sum[i + 1] || !(sum[i] > STAND_OUT * rest) || !(rest > 0))
+            continue;
+        means->age[i] = here < UINT8_MAX ? here + 1 : UINT8_MAX;
+        double a = log(fmaxf(sum[i - 1], 1e-30F)), b = log(sum[i]), c = log(fmaxf(sum[i + 1], 1e-30F));
+        double bend = a - 2 * b + c;
+        if (n < MAX_LINES)
+            out[n++] = (struct line){.hz = (i + (bend < 0 ? 0.5 * (a - c) / bend : 0)) * means->bin_hz,
+                                     .bin = i,
+                                     .age = means->age[i],
+                                     .ratio = sum[i] / rest,
+                                     .power = (double)(sum[i - 1] + sum[i] + sum[i + 1]) / means->n};
+    }
+    return n;
+}
+
+/* How many lines stand at whole multiples of the one at hz. */
+static uint32_t harmonics(const struct line *lines, uint32_t n, double hz, double bin_hz)
+{
+    uint32_t count = 0;
+    for (uint32_t i = 0; i < n; i++) {
+        double multiple = round(lines[i].hz / hz);
+        count += multiple >= 2 && multiple <= MOST_HARMONICS &&
+                 fabs(lines[i].hz - multiple * hz) <= FAMILY_ERROR * lines[i].hz + bin_hz / 2;
+    }
+    return count;
+}
+
+/* Whether the line or one of which it is a multiple leads a family in the class's band. */
+static bool is_of_family(const struct call_class *class, const struct line *all, uint32_t n,
+                         const struct line *line, double bin_hz)
+{
+    for (uint32_t i = 0; i < n; i++) {
+        double multiple = round(line->hz / all[i].hz);
+        if (multiple >= 1 && multiple <= MOST_HARMONICS && all[i].hz >= class->low_hz &&
+            all[i].hz <= class->high_hz &&
+            fabs(line->hz - multiple * all[i].hz) <= FAMILY_ERROR * line->hz + bin_hz / 2 &&
+            harmonics(all, n, all[i].hz, bin_hz) >= class->sound.min_harmonics)
+            return true;
+    }
+    return false;
+}
+
+static uint32_t class_of(const struct lines *lines, const struct line *all, uint32_t n,
+                         const struct line *line, double bin_hz)
+{
+    uint32_t best = lines->setup.n_classes;
+    double least = INFINITY;
+    for (uint32_t c = 0; c < lines->setup.n_classes; c++) {
+        const struct call_class *class = &lines->setup.classes[c];
+        const struct other_shape *sound = &class->sound;
+        bool fits = sound->min_harmonics > 0 ? is_of_family(class, all, n, line, bin_hz)
+                                             : line->hz >= class->low_hz && line->hz <= class->high_hz;
+        if (!fits || line->age * PERIOD_S < sound->min_s ||
+            !(sound->manner == MANNER_LINE || (sound->manner == MANNER_PICK_UP && line->same)))
+            continue;
+        double allowance = log(class->high_hz / class->low_hz) +
+                           (sound->manner == MANNER_PICK_UP ? -100.0 : 0.0) -
+                           (sound->min_harmonics > 0 ? 50.0 : 0.0);
+        if (allowance < least) {
+            least = allowance;
+            best = c;
+        }
+    }
+    return best;
+}
+
+static void tell(uint32_t c, const struct found_call *found, const struct found_sink *sink)
+{
+    struct found_call whole = *found;
+    whole.class_index = c;
+    sink->take(sink->context, &whole);
+}
+
+static bool is_multiple(const struct line *line, const struct line *of, double bin_hz)
+{
+    double multiple = round(line->hz / of->hz);
+    return multiple >= 1 && fabs(line->hz - multiple * of->hz) <= FAMILY_ERROR * line->hz / 2 + bin_hz / 2;
+}
+
+static bool is_root(const struct line *all, uint32_t i, double bin_hz)
+{
+    for (uint32_t k = 0; k < i; k++)
+        if (is_multiple(&all[i], &all[k], bin_hz))
+            return false;
+    return true;
+}
+
+/* What two thirds of a family's power are, all of it is: weak lines are not told well, and at some
+ * frequencies any two hydrophones hear a sound in phase. */
+static void agree(struct line *all, uint32_t n, double bin_hz)
+{
+    bool same[MAX_LINES] = {false};
+    for (uint32_t i = 0; i < n; i++) {
+        double power = 0, alike = 0;
+        if (!is_root(all, i, bin_hz))
+            continue;
+        for (uint32_t k = i; k < n; k++)
+            if (is_multiple(&all[k], &all[i], bin_hz)) {
+                power += all[k].power;
+                alike += all[k].same ? all[k].power : 0;
+            }
+        for (uint32_t k = i; k < n && 3 * alike >= 2 * power; k++)
+            same[k] = same[k] || is_multiple(&all[k], &all[i], bin_hz);
+    }
+    for (uint32_t i = 0; i < n; i++)
+        all[i].same = same[i];
+}
+
+/* Each class is told each 10 s, a line at a time: the newest 10 s of it, and at first all of it. */
+static void tell_lines(struct lines *lines, const struct means *means, const struct line *all, uint32_t n,
+                       double end_frame, uint64_t known, const struct found_sink *sink)
+{
+    bool due[CATALOGUE_MAX_CLASSES], used[CATALOGUE_MAX_CLASSES] = {false};
+    double period = PERIOD_S * lines->setup.rate_hz;
+    for (uint32_t c = 0; c < lines->setup.n_classes; c++)
+        due[c] = end_frame - lines->told[c] >= TELL_S * lines->setup.rate_hz - period / 2;
+    for (uint32_t i = 0, n_told = 0; i < n && n_told < MOST_TOLD; i++) {
+        uint32_t c = class_of(lines, all, n, &all[i], means->bin_hz);
+        if (c == lines->setup.n_classes || !due[c])
+            continue;
+        n_told++;
+        double start = fmax(end_frame - all[i].age * period, lines->told[c]);
+        used[c] = true;
+        const struct found_call found = {.start_frame = fmax(0, start),
+                                         .end_frame = end_frame,
+                                         .known_frame = known,
+                                         .low_hz = all[i].hz - means->bin_hz,
+                                         .high_hz = all[i].hz + means->bin_hz,
+                                         .snr_db = units_power_db(all[i].ratio),
+                                         .mean_square_pa2 = all[i].power};
+        tell(c, &found, sink);
+    }
+    for (uint32_t c = 0; c < lines->setup.n_classes; c++)
+        if (used[c])
+            lines->told[c] = end_frame;
+}
+
+/* ---- fast frames */
+
+/* The frame's complex amplitude at hz, Hann (a single bin of the discrete transform). */
+static void amplitude_at(const float *samples, uint32_t n, double step, double out[2])
+{
+    out[0] = out[1] = 0;
+    double re = 1, im = 0, turn_re = cos(step), turn_im = -sin(step);
+    double hann = 1, hann_im = 0, hann_re = cos(2 * M_PI / n), hann_turn = sin(2 * M_PI / n);
+    for (uint32_t i = 0; i < n; i++) {
+        double w = 0.5 * (1 - hann) * samples[i], was = re, hann_was = hann;
+        out[0] += w * re;
+        out[1] += w * im;
+        re = was * turn_re - im * turn_im;
+        im = was * turn_im + im * turn_re;
+        hann = hann_was * hann_re - hann_im * hann_turn;
+        hann_im = hann_was * hann_turn + hann_im * hann_re;
+    }
+}
+
+static bool is_same_on_both(const struct other_frame *frame, const float *second, double hz, double rate_hz)
+{
+    double a[2], b[2];
+    amplitude_at(frame->samples, frame->n, 2 * M_PI * hz / rate_hz, a);
+    amplitude_at(second, frame->n, 2 * M_PI * hz / rate_hz, b);
+    double both = a[0] * a[0] + a[1] * a[1] + b[0] * b[0] + b[1] * b[1];
+    return (a[0] - b[0]) * (a[0] - b[0]) + (a[1] - b[1]) * (a[1] - b[1]) < SAME * both;
+}
+
+static void push_fast(struct lines *lines, const struct other_frame *frame, const float *second,
+                      const struct found_sink *sink)
+{
+    struct means *means = &lines->fast;
+    for (uint32_t i = 0; i < means->n_bins; i++)
+        means->sum[i] += frame->power[i];
+    means->n++;
+    if (means->n * lines->setup.frame_s < PERIOD_S)
+        return;
+    struct line found[MAX_LINES];
+    uint32_t n = find_lines(means, 0.4 * lines->slow_rate_hz, lines->setup.rate_hz / 2, found);
+    for (uint32_t i = 0; i < n && second; i++)
+        found[i].same = is_same_on_both(frame, second, found[i].hz, lines->setup.rate_hz);
+    if (second)
+        agree(found, n, means->bin_hz);
+    uint64_t end = frame->start_frame + frame->n;
+    tell_lines(lines, means, found, n, (double)end, end - 1, sink);
+    clear(lines, means, end);
+}
+
+/* ---- the decimated copy */
+
+static double density(const struct means *means, double low_hz, double high_hz)
+{
+    uint32_t first = (uint32_t)(low_hz / means->bin_hz), end = (uint32_t)(high_hz / means->bin_hz) + 1;
+    double least = INFINITY; /* lines must not count: the quietest third of the band */
+    uint32_t step = (end - first) / 3 > 0 ? (end - first) / 3 : 1;
+    for (uint32_t i = first; i + step <= end; i += step) {
+        double sum = 0;
+        for (uint32_t k = i; k < i + step; k++)
+            sum += means->sum[k];
+        least = fmin(least, sum / step);
+    }
+    return least;
+}
+
+static double coherence(const struct lines *lines, double low_hz, double high_hz)
+{
+    double sum = 0;
+    uint32_t n = 0;
+    for (uint32_t i = (uint32_t)(low_hz / lines->slow.bin_hz); i * lines->slow.bin_hz <= high_hz; i++, n++) {
+        const float *c = lines->cross + 4 * i;
+        double both = (double)c[2] * c[3];
+        sum += both > 0 ? ((double)c[0] * c[0] + (double)c[1] * c[1]) / both : 0;
+    }
+    return n ? sum / n : 1;
+}
+
+static void look_for_flow(struct lines *lines, double end_frame, uint64_t known,
+                          const struct found_sink *sink)
+{
+    const struct means *means = &lines->slow;
+    double low = density(means, 15, 25), high = density(means, 80, 125);
+    double bias = 1.0 / means->n; /* of the coherence of independent noise */
+    bool flows = lines->setup.pair && high > 0 && log(low / high) > FLOW_POWER * log(100.0 / 20) &&
+                 coherence(lines, 15, 60) - bias < FLOW_COHERENCE;
+    lines->flow_periods = flows ? lines->flow_periods + 1 : 0;
+    for (uint32_t c = 0; c < lines->setup.n_classes; c++) {
+        const struct call_class *class = &lines->setup.classes[c];
+        if (class->sound.manner != MANNER_FLOW || !flows ||
+            lines->flow_periods * PERIOD_S < class->sound.min_s ||
+            end_frame - lines->told[c] < (TELL_S - PERIOD_S / 2) * lines->setup.rate_hz)
+            continue;
+        double start =
+            fmax(end_frame - lines->flow_periods * PERIOD_S * lines->setup.rate_hz, lines->told[c]);
+        const struct found_call found = {.start_frame = fmax(0, start),
+                                         .end_frame = end_frame,
+                                         .known_frame = known,
+                                         .low_hz = class->low_hz,
+                                         .high_hz = class->high_hz,
+                                         .snr_db = units_power_db(low / high),
+                                         .mean_square_pa2 = low / means->n / means->bin_hz *
+                                                            (class->high_hz - class->low_hz)};
+        tell(c, &found, sink);
+        lines->told[c] = end_frame;
+    }
+}
+
+static void end_slow(struct lines *lines, uint64_t end, const struct found_sink *sink)
+{
+    struct means *means = &lines->slow;
+    struct line found[MAX_LINES];
+    uint32_t n = find_lines(means, 5, 0.4 * lines->slow_rate_hz, found);
+    for (uint32_t i = 0; i < n && lines->setup.pair; i++) {
+        const float *c = lines->cross + 4 * found[i].bin;
+        found[i].same = found[i].bin < SLOW_BINS && lines->unlike[found[i].bin] < SAME * (c[2] + c[3]);
+    }
+    if (lines->setup.pair)
+        agree(found, n, means->bin_hz);
+    double late = decimator_get_delay(lines->decimators[0]);
+    tell_lines(lines, means, found, n, (double)end - late, end - 1, sink);
+    look_for_flow(lines, (double)end - late, end - 1, sink);
+    clear(lines, means, end);
+}
+
+/* Spectra of the held samples of both channels. */
+static void add_slow(struct lines *lines)
+{
+    uint32_t channels = lines->setup.pair ? 2 : 1;
+    for (uint32_t i = channels; i-- > 0;) {
+        spectrum_power(lines->spectrum, lines->held[i], lines->power);
+        spectrum_get_low_bins(lines->spectrum, SLOW_BINS, lines->bins[i]);
+    }
+    for (uint32_t i = 0; i < lines->slow.n_bins; i++)
+        lines->slow.sum[i] += lines->power[i];
+    lines->slow.n++;
+    for (uint32_t i = 0; i < SLOW_BINS && channels == 2; i++) {
+        const float *a = lines->bins[0] + 2 * i, *b = lines->bins[1] + 2 * i;
+        float *c = lines->cross + 4 * i;
+        c[0] += a[0] * b[0] + a[1] * b[1];
+        c[1] += a[1] * b[0] - a[0] * b[1];
+        c[2] += a[0] * a[0] + a[1] * a[1];
+        c[3] += b[0] * b[0] + b[1] * b[1];
+        lines->unlike[i] += (a[0] - b[0]) * (a[0] - b[0]) + (a[1] - b[1]) * (a[1] - b[1]);
+    }
+}
+
+void lines_push(struct lines *lines, const struct other_frame *frame, const float *second,
+                const struct found_sink *sink)
+{
+    const float *channels[] = {frame->samples, second};
+    size_t n = 0;
+    push_fast(lines, frame, second, sink);
+    uint32_t filled = lines->filled;
+    for (uint32_t c = 0; c < (lines->setup.pair ? 2 : 1); c++) {
+        n = decimator_push(lines->decimators[c], channels[c], frame->n, lines->scratch);
+        for (size_t i = 0; i < n && filled + i < SLOW_N; i++)
+            lines->held[c][filled + i] = lines->scratch[i];
+    }
+    lines->filled += (uint32_t)n;
+    if (lines->filled < SLOW_N)
+        return;
+    add_slow(lines);
+    for (uint32_t c = 0; c < (lines->setup.pair ? 2 : 1); c++)
+        memmove(lines->held[c], lines->held[c] + SLOW_N / 2, SLOW_N / 2 * sizeof(float));
+    lines->filled = SLOW_N / 2; /* what the last frame had beyond is lost: a few samples of a background */
+    uint64_t end = frame->start_frame + frame->n;
+    if ((double)(end - lines->slow.start_frame) >= PERIOD_S * lines->setup.rate_hz)
+        end_slow(lines, end, sink);
+}

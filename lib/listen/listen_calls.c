@@ -1,0 +1,148 @@
+/* Calls and what is no animal's: joined over the channels, withheld or given; see listen.h. */
+#include "base/units.h"
+#include "listen/listen_inner.h"
+#include <math.h>
+#include <string.h>
+
+static bool is_hidden(struct listen *listen, const struct found_call *found)
+{
+    if (listen->gate_channel == 0 ||
+        !gate_hides(listen->ears[listen->gate_channel - 1].gate, found->start_frame, found->end_frame,
+                    found->low_hz, found->high_hz))
+        return false;
+    listen->n_hidden[found->class_index]++;
+    return true;
+}
+
+void listen_take_call(void *context, uint32_t channel, const struct found_call *found)
+{
+    struct listen *listen = context;
+    joiner_take(&listen->joiner, channel, found);
+}
+
+static struct event *add_call(struct listen *listen, const struct joined_call *joined)
+{
+    const struct found_call *found = &joined->found;
+    const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
+    struct event *event = listen_add_event(listen, EVENT_CALL, found->known_frame);
+    struct call *call = &event->as.call;
+    *call = (struct call){
+        .channel = joined->channel,
+        .group = class->animal ? class->group : GROUP_UNKNOWN,
+        .form = class->form,
+        .start_ns = listen_time_at(listen, found->start_frame),
+        .end_ns = listen_time_at(listen, found->end_frame),
+        .low_hz = found->low_hz,
+        .high_hz = found->high_hz,
+        .n_pulses = found->n_pulses,
+        .interval_s = found->interval_frames > 0 ? found->interval_frames / listen->setup.rate_hz : NAN,
+        .snr_db = found->snr_db,
+        .level_db = units_spl_db(found->mean_square_pa2),
+        .relative = listen->ears[joined->channel - 1].relative,
+        .bearing_deg = NAN,
+        .mirror_deg = NAN,
+        .certainty = class->certainty,
+        .evidence = class->evidence};
+    memcpy(call->class_name, class->name, sizeof call->class_name);
+    return event;
+}
+
+/* Sounds that were gathered; what they speak against was said when each became known. */
+static void take_gathered(void *context, const struct joined_call *joined, uint32_t n_sounds)
+{
+    struct listen *listen = context;
+    struct joined_call sound = *joined;
+    sound.found.known_frame = listen->block_end - 1;
+    add_call(listen, &sound)->as.call.n_sounds = n_sounds;
+}
+
+static void take_sound_of_none(struct listen *listen, const struct joined_call *joined)
+{
+    uint64_t against[CALL_MAX_AGAINST];
+    uint32_t n_against = covers_take_sound(&listen->covers, joined, against);
+    if (!covers_gives_now(&listen->covers, joined, n_against > 0))
+        return;
+    struct call *call = &add_call(listen, joined)->as.call;
+    call->n_sounds = 1;
+    call->n_against = n_against;
+    memcpy(call->against, against, n_against * sizeof against[0]);
+}
+
+static void take_joined(void *context, const struct joined_call *joined)
+{
+    struct listen *listen = context;
+    const struct found_call *found = &joined->found;
+    bool animal = listen->setup.catalogue->classes[found->class_index].animal;
+    if (animal && is_hidden(listen, found))
+        return;
+    double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
+    if (animal && evidence <= 0 && listen->setup.catalogue->classes[found->class_index].evidence > 0) {
+        listen->n_covered[found->class_index]++;
+        return;
+    }
+    listen->n_found[found->class_index]++;
+    if (!animal) {
+        take_sound_of_none(listen, joined);
+        return;
+    }
+    struct event *event = add_call(listen, joined);
+    event->as.call.evidence = evidence;
+    covers_keep_call(&listen->covers, found, event->counter);
+}
+
+/* An impulse that has stood alone long enough. */
+static void take_lonely(struct listen *listen, bool all)
+{
+    struct found_call found;
+    if (alone_give(&listen->alone, listen->block_end, all, &found))
+        joiner_take(&listen->joiner, listen->measuring.reference, &found);
+}
+
+void listen_give_calls(struct listen *listen, bool all)
+{
+    const struct joined_sink joined = {take_joined, listen};
+    const struct gathered_sink gathered = {take_gathered, listen};
+    take_lonely(listen, all);
+    joiner_give(&listen->joiner, all ? UINT64_MAX : listen->block_end, &joined);
+    covers_give(&listen->covers, listen->block_end, all, &gathered);
+}
+
+/* ---- what else is recognised */
+
+enum status listen_create_calls(struct listen *listen)
+{
+    const struct listen_setup *setup = &listen->setup;
+    const struct catalogue *catalogue = setup->catalogue;
+    bool any = false;
+    for (uint32_t i = setup->n_channels; i > listen->strip_channel; i--)
+        if (listen->strip_channel > 0 && setup->calibration[i - 1].role != ROLE_MEASURE)
+            listen->second_channel = i;
+    for (uint32_t c = 0; c < catalogue->n_classes; c++)
+        any = any || catalogue->classes[c].sound.manner != MANNER_NONE;
+    covers_reset(&listen->covers, catalogue->classes, catalogue->n_classes, setup->rate_hz);
+    alone_reset(&listen->alone, catalogue->classes, catalogue->n_classes, setup->rate_hz);
+    if (listen->strip_channel == 0 || !any)
+        return STATUS_OK;
+    return others_create(catalogue->classes, catalogue->n_classes, setup->rate_hz, listen->second_channel > 0,
+                         &listen->others);
+}
+
+void listen_take_other(void *context, const struct found_call *found)
+{
+    struct listen *listen = context;
+    joiner_take(&listen->joiner, listen->strip_channel, found);
+}
+
+void listen_push_others(struct listen *listen, uint32_t n_frames)
+{
+    const struct found_sink sink = {listen_take_other, listen};
+    if (!listen->others)
+        return;
+    const float *second = listen->second_channel ? listen->ears[listen->second_channel - 1].pascals : NULL;
+    others_push(listen->others, listen->ears[listen->strip_channel - 1].pascals, second, n_frames, &sink);
+}
+
+void listen_take_alone(struct listen *listen, const struct found_impulse *found)
+{
+    alone_take(&listen->alone, found);
+}
