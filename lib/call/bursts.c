@@ -8,10 +8,12 @@
 #define MAX_PEAKS 12
 #define MAX_OPEN 24
 #define MAX_ALIKE 64
-#define STAND_OUT 12.6F /* 11 dB */
-#define BESIDE_NEAR 5   /* bins beside a peak that it must stand above: from here ... */
-#define BESIDE_FAR 9    /* ... to here */
-#define UP 1.012F       /* steps of the background: a median */
+#define MOST_HARMONICS 14
+#define HARMONIC_RATIO 4.0 /* mean over that beside it: 6 dB */
+#define STAND_OUT 12.6F    /* 11 dB */
+#define BESIDE_NEAR 5      /* bins beside a peak that it must stand above: from here ... */
+#define BESIDE_FAR 9       /* ... to here */
+#define UP 1.012F          /* steps of the background: a median */
 #define DOWN (1 / 1.012F)
 #define UP_SLOW 1.002F    /* where a tone stands: 12 s for 20 dB */
 #define REACH_BINS 1.3    /* from where the contour points to */
@@ -35,12 +37,13 @@ struct burst {
     bool used;
     uint64_t start, last; /* numbers of frames */
     double start_frame;
-    double n, t, tt, b, tb, bb, ratio, power, low, high, last_bin;
+    double n, t, tt, b, tb, bb, ratio, power, last_bin;
+    double harmonic[MOST_HARMONICS + 1], beside[MOST_HARMONICS + 1]; /* sums of power at each, and by it */
 };
 
 /* A burst that is over. */
 struct straight {
-    double start_frame, end_frame, hz, extent_hz, low_hz, high_hz, snr_db, mean_square;
+    double start_frame, end_frame, hz, extent_hz, low_hz, high_hz, snr_db, mean_square, harmonics_to_hz;
     uint32_t class_index;
     bool told;
 };
@@ -119,7 +122,8 @@ static void tell(struct bursts *bursts, const struct straight *burst)
                                      .low_hz = burst->low_hz,
                                      .high_hz = burst->high_hz,
                                      .snr_db = burst->snr_db,
-                                     .mean_square_pa2 = burst->mean_square};
+                                     .mean_square_pa2 = burst->mean_square,
+                                     .harmonics_to_hz = burst->harmonics_to_hz};
     bursts->sink->take(bursts->sink->context, &found);
 }
 
@@ -259,6 +263,9 @@ static void end_burst(struct bursts *bursts, struct burst *burst)
                                 .high_hz = (mean_b + half) * setup->bin_hz,
                                 .snr_db = units_power_db(burst->ratio / burst->n),
                                 .mean_square = burst->power / burst->n};
+    for (uint32_t k = 2; k <= MOST_HARMONICS; k++)
+        if (burst->harmonic[k] > HARMONIC_RATIO * burst->beside[k])
+            straight.harmonics_to_hz = k * straight.hz;
     burst->used = false;
     if (frames * setup->frame_s <= LONGEST_CHIP_S && add_chip(bursts, burst, straight.hz))
         return;
@@ -334,6 +341,18 @@ static void add_point(struct burst *burst, uint64_t number, const struct peak *p
     burst->last_bin = peak->bin;
 }
 
+/* What stands at whole multiples of a burst: machines drive their transducers hard. */
+static void add_harmonics(struct burst *burst, const float *power, uint32_t n_bins)
+{
+    for (uint32_t k = 2; k <= MOST_HARMONICS; k++) {
+        uint32_t bin = (uint32_t)lround(k * burst->last_bin);
+        if (bin + BESIDE_FAR >= n_bins)
+            return;
+        burst->harmonic[k] += fmaxf(power[bin], fmaxf(power[bin - 1], power[bin + 1]));
+        burst->beside[k] += 1.8 * level_beside(power, bin); /* as much as the greatest of three in noise */
+    }
+}
+
 /* Where the contour points to: along its fit once that is sure. */
 static double expected(const struct burst *burst, uint64_t number)
 {
@@ -345,8 +364,9 @@ static double expected(const struct burst *burst, uint64_t number)
     return mean_b + slope * ((double)(number - burst->start) - mean_t);
 }
 
-static void carry_on(struct bursts *bursts, uint64_t number, struct peak *peaks, uint32_t n_peaks)
+static void carry_on(struct bursts *bursts, const float *power, struct peak *peaks, uint32_t n_peaks)
 {
+    uint64_t number = bursts->n_frames;
     for (uint32_t k = 0; k < MAX_OPEN; k++) {
         struct burst *burst = &bursts->open[k];
         struct peak *best = NULL;
@@ -363,6 +383,7 @@ static void carry_on(struct bursts *bursts, uint64_t number, struct peak *peaks,
         if (best) {
             best->taken = true;
             add_point(burst, number, best);
+            add_harmonics(burst, power, bursts->setup.n / 2 + 1);
         } else if (number - burst->last > GAP_FRAMES)
             end_burst(bursts, burst);
     }
@@ -392,7 +413,7 @@ void bursts_push(struct bursts *bursts, const struct other_frame *frame, const s
         return;
     }
     uint32_t n = find_peaks(bursts, frame->power, peaks);
-    carry_on(bursts, bursts->n_frames, peaks, n);
+    carry_on(bursts, frame->power, peaks, n);
     for (uint32_t i = 0; i < n; i++)
         if (!peaks[i].taken)
             open_new(bursts, frame, &peaks[i]);

@@ -14,6 +14,7 @@ struct found_call {
     double interval_frames; /* 0 for a tone */
     double snr_db;
     double mean_square_pa2; /* in the call's band, over its time */
+    double harmonics_to_hz; /* of a burst: its highest harmonic that stands out; 0: none */
 };
 
 struct found_sink {

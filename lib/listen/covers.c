@@ -4,8 +4,8 @@
 #include <string.h>
 
 #define COVERED 0.5       /* share of a call's time, and of its band, that must be covered */
-#define BAND_SHARE 0.02   /* how exactly two detectors tell a frequency, as a share of it ... */
-#define BAND_HZ 50.0      /* ... and at least */
+#define BAND_SHARE 0.03   /* how exactly two detectors tell a frequency, as a share of it ... */
+#define BAND_HZ 2.0       /* ... and beside it */
 #define RHYTHM_ERROR 0.03 /* of an interval */
 #define MOST_MULTIPLE 4   /* missed pulses */
 
@@ -19,7 +19,7 @@ void covers_reset(struct covers *covers, const struct call_class *classes, uint3
 
 static bool shares_band(const struct found_call *sound, const struct found_call *call)
 {
-    double pad = fmax(BAND_HZ, BAND_SHARE * call->high_hz);
+    double pad = BAND_HZ + BAND_SHARE * call->high_hz;
     double low = fmax(sound->low_hz - pad, call->low_hz), high = fmin(sound->high_hz + pad, call->high_hz);
     return high >= low && high - low >= COVERED * (call->high_hz - call->low_hz);
 }

@@ -56,9 +56,37 @@ static void take_gathered(void *context, const struct joined_call *joined, uint3
     add_call(listen, &sound)->as.call.n_sounds = n_sounds;
 }
 
+/* Harmonics of a burst (a deterrent's reach beyond 100 kHz) fill the bands of click classes: what was to be
+ * heard there was not. */
+static void mask_harmonics(struct listen *listen, const struct found_call *found)
+{
+    const struct catalogue *catalogue = listen->setup.catalogue;
+    for (uint32_t c = 0; c < catalogue->n_classes; c++) {
+        const struct call_class *class = &catalogue->classes[c];
+        double multiple = ceil(class->low_hz / found->high_hz);
+        bool known = false; /* another class has the same band */
+        for (uint32_t k = 0; k < c; k++)
+            known = known || (catalogue->classes[k].animal && catalogue->classes[k].form == CALL_TRAIN &&
+                              catalogue->classes[k].low_hz == class->low_hz &&
+                              catalogue->classes[k].high_hz == class->high_hz);
+        if (!class->animal || class->form != CALL_TRAIN || known || multiple < 2 ||
+            multiple * found->low_hz > class->high_hz || found->harmonics_to_hz < class->low_hz)
+            continue;
+        struct event *event = listen_add_event(listen, EVENT_UNHEARD, found->known_frame);
+        event->as.unheard = (struct unheard){.channel = 0,
+                                             .low_hz = class->low_hz,
+                                             .high_hz = class->high_hz,
+                                             .start_ns = listen_time_at(listen, found->start_frame),
+                                             .end_ns = listen_time_at(listen, found->end_frame),
+                                             .cause = UNHEARD_OWN_SOURCE};
+    }
+}
+
 static void take_sound_of_none(struct listen *listen, const struct joined_call *joined)
 {
     uint64_t against[CALL_MAX_AGAINST];
+    if (joined->found.harmonics_to_hz > 0)
+        mask_harmonics(listen, &joined->found);
     uint32_t n_against = covers_take_sound(&listen->covers, joined, against);
     if (!covers_gives_now(&listen->covers, joined, n_against > 0))
         return;

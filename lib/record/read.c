@@ -291,7 +291,7 @@ static void read_call(struct reading *reading, struct call *call)
     call->bearing_from = (enum bearing_from)read_word(reading, "bearing_from", BEARING_AHEAD + 1, from_word);
     call->certainty = reading_number(reading, "certainty", true, NAN);
     call->evidence = reading_number(reading, "evidence", true, NAN);
-    call->n_sounds = reading_count(reading, "n_sounds", false); /* not in ledgers of formats 1 to 5 */
+    call->n_sounds = reading_count(reading, "n_sounds", false); /* an animal's call has none */
     read_against(reading, call);
 }
 
