@@ -161,10 +161,10 @@ static void run(struct result *result)
         assert_int_equal(listen_push(chain.listen, &block, &sink), STATUS_OK);
     }
     assert_int_equal(listen_finish(chain.listen, &sink), STATUS_OK);
-    uint64_t rejections[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
-    listen_get_rejections(chain.listen, rejections);
-    for (uint32_t c = 0; c < catalogue.n_classes; c++)
-        result->n_covered += (uint32_t)rejections[c][REJECT_NOT_AN_ANIMAL];
+    static struct class_account accounts[LISTEN_MAX_ACCOUNTS];
+    uint32_t n_accounts = listen_get_accounts(chain.listen, accounts);
+    for (uint32_t c = 0; c < n_accounts; c++)
+        result->n_covered += (uint32_t)accounts[c].rejected[REJECT_NOT_AN_ANIMAL];
     watch_get_view(chain.watch, &chain.view);
     result->contacts = chain.view.n_contacts;
     for (uint32_t i = 0; i < chain.view.n_contacts; i++) {
