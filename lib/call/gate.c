@@ -1,59 +1,23 @@
-/* What the own source covers. */
-#include "call/gate.h"
-#include "call/bands.h"
+/* What is known of the own source's impulses; see gate.h. */
+#include "call/gate_inner.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define STEP_S 0.005
 #define BLOCK_STEPS 1
-#define ABOVE 2.0 /* 3 dB over the background: the band is covered */
-#define STANDS_OUT                                                                                           \
-    4.0               /* 6 dB: the impulse is in the band at all; a step of 5 ms in the narrowest band has a \
-                         deviation of 1.4 dB */
-#define QUIET_STEPS 4 /* 20 ms back near the background end a stretch */
-#define LATE_BURST_STEPS 5   /* 25 ms: a burst that begins so late is still the same event */
 #define STALL_DB_S 8.0       /* a tail that falls more slowly is not told from another sound that stays up */
-#define STALL_ABOVE 4.0F     /* within 6 dB of the background the tail's end is not judged by its slope */
-#define BEFORE_STEPS 2       /* the 5 % energy point lies after the true onset */
-#define BACKGROUND_STEPS 100 /* 0.5 s before the onset */
-#define STRETCHES 64
-
-/* A masked stretch, in steps since the last reset; end is exclusive. */
-struct stretch {
-    int64_t start, end;
-};
-
-struct band {
-    double low_hz, high_hz;
-    struct stretch stretches[STRETCHES]; /* a ring, newest last */
-    uint32_t n_stretches;
-    bool open; /* the newest stretch has no end yet */
-    int64_t open_limit, quiet_since;
-    int64_t tail_from;   /* from this step on the band has to fall */
-    int64_t stall_steps; /* over how long its fall is judged */
-    float stall_ratio;   /* power after less power before that is no fall */
-    double background;
-};
-
-struct gate {
-    double rate_hz;
-    uint32_t step_frames, n_bands;
-    uint32_t n_memory; /* steps */
-    uint64_t first_frame;
-    int64_t n_steps; /* since the last reset */
-    uint32_t filled;
-    float *block; /* [step_frames] */
-    float *power; /* [n_bands][n_memory], a ring */
-    struct bands *bank;
-    struct band bands[GATE_BANDS];
-};
+#define FLOOR_LATE_STEPS 300 /* 1.5 s: by then an impulse is known */
+#define ARRIVAL 0.1          /* 10 dB below the usual peak: the expected impulse is there */
+#define RISE_STEPS 4         /* within which it rises by so much */
+#define SAME_STEPS 20        /* 100 ms: the 5 % point of a far shot lies that much behind its front */
+#define BINS_STEPS (uint32_t)(GATE_FLOOR_BIN_S / STEP_S)
 
 static uint32_t choose_bands(double rate_hz, struct band_edges edges[GATE_BANDS])
 {
-    static const double limits_hz[GATE_BANDS + 1] = {50, 1000, 5000, 20000, 1e9};
-    uint32_t n = 0;
-    for (uint32_t b = 0; b < GATE_BANDS; b++) {
+    static const double limits_hz[GATE_BANDS] = {GATE_LOW_HIGH_HZ, 1000, 5000, 20000, 1e9};
+    uint32_t n = 1;
+    edges[0] = (struct band_edges){GATE_LOW_LOW_HZ, GATE_LOW_HIGH_HZ};
+    for (uint32_t b = 0; b + 1 < GATE_BANDS; b++) {
         double high = fmin(limits_hz[b + 1], BANDS_HIGHEST * rate_hz);
         if (high > 1.2 * limits_hz[b])
             edges[n++] = (struct band_edges){limits_hz[b], high};
@@ -85,14 +49,16 @@ enum status gate_create(double rate_hz, double memory_s, struct gate **out)
     }
     gate->block = calloc(gate->step_frames, sizeof *gate->block);
     gate->power = calloc((size_t)gate->n_bands * gate->n_memory, sizeof *gate->power);
-    enum status status =
-        gate->block && gate->power
-            ? bands_create(rate_hz, edges, gate->n_bands, gate->step_frames, BLOCK_STEPS, 0, &gate->bank)
-            : STATUS_NO_MEMORY;
+    enum status status = gate->block && gate->power ? gate_low_create(rate_hz, gate->step_frames, &gate->low)
+                                                    : STATUS_NO_MEMORY;
+    if (status == STATUS_OK)
+        status = bands_create(rate_hz, edges + 1, gate->n_bands - 1, gate->step_frames, BLOCK_STEPS, 0,
+                              &gate->bank);
     if (status != STATUS_OK) {
         gate_destroy(gate);
         return status;
     }
+    gate_reset(gate, 0);
     *out = gate;
     return STATUS_OK;
 }
@@ -103,129 +69,102 @@ void gate_reset(struct gate *gate, uint64_t next_frame)
     gate->n_steps = 0;
     gate->filled = 0;
     bands_reset(gate->bank);
+    gate_low_reset(&gate->low);
+    gate->rhythm = (struct gate_rhythm){0};
+    gate->arrival = NO_STEP;
+    gate->usual_t90 = 0;
+    gate->n_onsets = 0;
     for (uint32_t b = 0; b < gate->n_bands; b++) {
-        gate->bands[b].n_stretches = 0;
-        gate->bands[b].open = false;
+        struct band *band = &gate->bands[b];
+        band->n_stretches = 0;
+        band->open = false;
+        band->arrival = NO_STEP;
+        band->usual_peak = 0;
+        band->floor = (struct gate_floor){0};
     }
 }
 
-static double frame_of(const struct gate *gate, int64_t step)
+/* Looks at the bands for the impulse whose arrival was seen: those in which it stands out by now. */
+static void mask_arrived(struct gate *gate, const struct gate_masked_sink *sink)
 {
-    return (double)gate->first_frame + (double)step * gate->step_frames;
+    for (uint32_t b = 0; b < gate->n_bands; b++)
+        if (gate->bands[b].arrival != gate->arrival)
+            gate_mask_band(gate, b, gate->arrival, gate->usual_t90, sink);
 }
 
-static float power_at(const struct gate *gate, uint32_t b, int64_t step)
+static void note_onset(struct gate *gate, int64_t onset)
 {
-    return gate->power[(size_t)b * gate->n_memory + (size_t)(step % gate->n_memory)];
+    gate->arrival = onset;
+    gate->onsets[gate->n_onsets++ % ONSETS] = onset;
 }
 
-static struct stretch *newest(struct band *band)
+/* The band that impulses fill most, over its background; -1 where none was heard yet. */
+static int leading_band(const struct gate *gate)
 {
-    return band->n_stretches ? &band->stretches[(band->n_stretches - 1) % STRETCHES] : NULL;
-}
-
-static bool is_masked(const struct band *band, int64_t step)
-{
-    uint32_t kept = band->n_stretches < STRETCHES ? band->n_stretches : STRETCHES;
-    for (uint32_t i = 0; i < kept; i++) {
-        const struct stretch *stretch = &band->stretches[(band->n_stretches - 1 - i) % STRETCHES];
-        if (step >= stretch->start && step < stretch->end)
-            return true;
+    int best = -1;
+    double most = 0;
+    for (uint32_t b = 0; b < gate->n_bands; b++) {
+        const struct band *band = &gate->bands[b];
+        double ratio = band->background > 0 ? band->usual_peak / band->background : 0;
+        if (ratio > most) {
+            most = ratio;
+            best = (int)b;
+        }
     }
-    return false;
+    return best;
 }
 
-static int compare_floats(const void *a, const void *b)
+/* An expected impulse is there when the band that it fills most rises to near its usual peak at the expected
+ * time: then its bands are masked at once. */
+static void expect(struct gate *gate, int64_t step, const struct gate_masked_sink *sink)
 {
-    float x = *(const float *)a, y = *(const float *)b;
-    return (x > y) - (x < y);
-}
-
-/* Median power of the unmasked steps before `step`; what was the background before where there are too few.
- */
-static double background_before(const struct gate *gate, uint32_t b, int64_t step)
-{
-    float before[BACKGROUND_STEPS];
-    const struct band *band = &gate->bands[b];
-    uint32_t n = 0;
-    int64_t oldest = gate->n_steps - gate->n_memory;
-    for (int64_t k = step - 1; k >= 0 && k >= oldest && k >= step - BACKGROUND_STEPS; k--)
-        if (!is_masked(band, k))
-            before[n++] = power_at(gate, b, k);
-    if (n < 10)
-        return band->background;
-    qsort(before, n, sizeof before[0], compare_floats);
-    return before[n / 2];
-}
-
-static void give(const struct gate *gate, struct band *band, const struct gate_masked_sink *sink)
-{
-    const struct stretch *stretch = newest(band);
-    band->open = false;
-    if (!sink || stretch->end <= stretch->start)
-        return;
-    struct gate_masked masked = {.start_frame = frame_of(gate, stretch->start),
-                                 .end_frame = frame_of(gate, stretch->end),
-                                 .low_hz = band->low_hz,
-                                 .high_hz = band->high_hz};
-    sink->take(sink->context, &masked);
-}
-
-/* A tail falls. A band that stays up is held by another sound, an animal's for all we know: it must not be
- * hidden. */
-static bool has_stalled(const struct gate *gate, uint32_t b, int64_t step)
-{
-    const struct band *band = &gate->bands[b];
-    int64_t n = band->stall_steps;
-    if (step + 1 < band->tail_from + 2 * n)
-        return false;
-    float before = 0, after = 0;
-    for (int64_t k = 0; k < n; k++) {
-        after += power_at(gate, b, step - k);
-        before += power_at(gate, b, step - n - k);
+    double half_s = gate->rhythm.interval_s / 2;
+    bool since = gate->arrival == NO_STEP || (double)(step - gate->arrival) * STEP_S > half_s;
+    int lead = since ? leading_band(gate) : -1;
+    if (lead >= 0 && step >= RISE_STEPS &&
+        gate_rhythm_expects(&gate->rhythm, frame_of(gate, step) / gate->rate_hz)) {
+        float wanted = (float)ARRIVAL * gate->bands[lead].usual_peak;
+        if (power_at(gate, (uint32_t)lead, step) > wanted &&
+            power_at(gate, (uint32_t)lead, step - RISE_STEPS) < wanted)
+            note_onset(gate, step);
     }
-    float background = (float)((double)n * band->background);
-    return after > STALL_ABOVE * background && after - background > band->stall_ratio * (before - background);
+    if (gate->arrival != NO_STEP && step >= gate->arrival &&
+        step < gate->arrival + gate->usual_t90 + LATE_BURST_STEPS)
+        mask_arrived(gate, sink);
 }
 
-/* Where the tail had fallen furthest before another sound held the band. */
-static int64_t least_step(const struct gate *gate, uint32_t b, int64_t step)
+/* Steps since the last impulse whose onset is known, of those before `step`; -1: none. */
+static int64_t steps_since_onset(const struct gate *gate, int64_t step)
 {
-    int64_t least = step;
-    for (int64_t k = step; k > step - 2 * gate->bands[b].stall_steps; k--)
-        if (power_at(gate, b, k) < power_at(gate, b, least))
-            least = k;
+    int64_t least = -1;
+    for (uint32_t i = 0; i < ONSETS && i < gate->n_onsets; i++) {
+        int64_t since = step - gate->onsets[i];
+        if (since >= 0 && (least < 0 || since < least))
+            least = since;
+    }
     return least;
 }
 
-/* Takes one more step into the open stretch, or ends it. */
-static void extend(struct gate *gate, uint32_t b, int64_t step, const struct gate_masked_sink *sink)
+static void learn_floors(struct gate *gate, int64_t step)
 {
-    struct band *band = &gate->bands[b];
-    struct stretch *stretch = newest(band);
-    if (has_stalled(gate, b, step)) {
-        stretch->end = least_step(gate, b, step) + 1;
-        give(gate, band, sink);
-        return;
-    }
-    if (power_at(gate, b, step) > ABOVE * band->background) {
-        band->quiet_since = step + 1;
-        stretch->end = step + 1;
-    }
-    if (step + 1 - band->quiet_since >= QUIET_STEPS || step + 1 >= band->open_limit)
-        give(gate, band, sink);
+    int64_t since = step >= 0 ? steps_since_onset(gate, step) : -1;
+    for (uint32_t b = 0; b < gate->n_bands && since >= 0; b++)
+        gate_floor_take(&gate->bands[b].floor, (double)since * STEP_S, power_at(gate, b, step), BINS_STEPS);
 }
 
 static void take_step(struct gate *gate, const struct gate_masked_sink *sink)
 {
+    const size_t at = (size_t)(gate->n_steps % gate->n_memory);
     bands_push(gate->bank, gate->block);
-    for (uint32_t b = 0; b < gate->n_bands; b++)
-        gate->power[(size_t)b * gate->n_memory + (size_t)(gate->n_steps % gate->n_memory)] =
-            bands_get_power(gate->bank, b)[0];
+    gate->power[at] = gate_low_step(&gate->low, gate->block);
+    for (uint32_t b = 1; b < gate->n_bands; b++)
+        gate->power[b * (size_t)gate->n_memory + at] = bands_get_power(gate->bank, b - 1)[0];
     gate->n_steps++;
     for (uint32_t b = 0; b < gate->n_bands; b++)
         if (gate->bands[b].open)
-            extend(gate, b, gate->n_steps - 1, sink);
+            gate_extend(gate, b, gate->n_steps - 1, sink);
+    expect(gate, gate->n_steps - 1, sink);
+    learn_floors(gate, gate->n_steps - 1 - FLOOR_LATE_STEPS);
 }
 
 void gate_push(struct gate *gate, const float *pascals, uint32_t n, const struct gate_masked_sink *sink)
@@ -243,48 +182,28 @@ void gate_push(struct gate *gate, const float *pascals, uint32_t n, const struct
     }
 }
 
-/* The first step, from the onset on, at which the impulse is in the band; -1 where it is not. */
-static int64_t find_start(const struct gate *gate, uint32_t b, int64_t onset, int64_t last, double background)
-{
-    int64_t oldest = gate->n_steps - gate->n_memory;
-    int64_t first = onset - BEFORE_STEPS;
-    first = first < 0 ? 0 : first < oldest ? oldest : first;
-    for (int64_t step = first; step < last && step < gate->n_steps; step++)
-        if (power_at(gate, b, step) > STANDS_OUT * background) {
-            while (step > first && power_at(gate, b, step - 1) > ABOVE * background)
-                step--;
-            return step;
-        }
-    return -1;
-}
-
-static void mask_band(struct gate *gate, uint32_t b, int64_t onset, int64_t t90,
-                      const struct gate_masked_sink *sink)
+/* What the last impulse was at its highest in the band, averaged in dB with those before. */
+static void learn_peak(struct gate *gate, uint32_t b, int64_t end)
 {
     struct band *band = &gate->bands[b];
-    double background = background_before(gate, b, onset - BEFORE_STEPS);
-    int64_t start = find_start(gate, b, onset, onset + t90 + LATE_BURST_STEPS, background);
-    if (start < 0)
-        return;
-    if (band->open && start <= newest(band)->end) { /* the sound before still covers it: one stretch */
-        band->open_limit = onset + (int64_t)(GATE_LONGEST_S / STEP_S);
-        band->tail_from = onset + t90 + LATE_BURST_STEPS;
-        return;
+    float peak = 0;
+    for (int64_t step = gate->arrival - BEFORE_STEPS; step < end && step < gate->n_steps; step++)
+        if (step >= 0 && step >= gate->n_steps - gate->n_memory && power_at(gate, b, step) > peak)
+            peak = power_at(gate, b, step);
+    if (band->arrival != gate->arrival)
+        peak = 0;
+    band->usual_peak = band->usual_peak > 0 && peak > 0 ? sqrtf(band->usual_peak * peak) : peak;
+}
+
+void gate_get_tail(const struct gate *gate, struct gate_tail *out)
+{
+    out->n = gate->n_bands;
+    int64_t since = gate->n_steps > 0 ? steps_since_onset(gate, gate->n_steps - 1) : -1;
+    for (uint32_t b = 0; b < gate->n_bands; b++) {
+        const struct band *band = &gate->bands[b];
+        double ratio = gate_floor_ratio(&band->floor, (double)since * STEP_S);
+        out->bands[b] = (struct gate_tail_band){band->low_hz, band->high_hz, (float)ratio, band->open};
     }
-    if (band->open)
-        give(gate, band, sink);
-    struct stretch *last = newest(band);
-    if (last && start < last->end)
-        start = last->end;
-    band->background = background;
-    band->n_stretches++;
-    *newest(band) = (struct stretch){start, start};
-    band->open = true;
-    band->quiet_since = start + LATE_BURST_STEPS;
-    band->tail_from = onset + t90 + LATE_BURST_STEPS;
-    band->open_limit = onset + (int64_t)(GATE_LONGEST_S / STEP_S);
-    for (int64_t step = start; step < gate->n_steps && band->open; step++)
-        extend(gate, b, step, sink);
 }
 
 void gate_push_impulse(struct gate *gate, double onset_frame, double t90_s,
@@ -293,8 +212,18 @@ void gate_push_impulse(struct gate *gate, double onset_frame, double t90_s,
     int64_t onset = (int64_t)floor((onset_frame - (double)gate->first_frame) / gate->step_frames);
     if (onset < 0 || onset >= gate->n_steps)
         return;
+    int64_t t90 = (int64_t)ceil(t90_s / STEP_S);
+    int64_t same = t90 > SAME_STEPS ? t90 : SAME_STEPS;
+    gate_rhythm_take(&gate->rhythm, onset_frame / gate->rate_hz);
+    if (gate->arrival != NO_STEP && onset < gate->arrival - same)
+        return; /* a later one was expected, seen and masked since: this one's band is covered, or it was odd
+                 */
+    if (gate->arrival == NO_STEP || onset > gate->arrival + same)
+        note_onset(gate, onset);
+    gate->usual_t90 = t90;
+    mask_arrived(gate, sink);
     for (uint32_t b = 0; b < gate->n_bands; b++)
-        mask_band(gate, b, onset, (int64_t)ceil(t90_s / STEP_S), sink);
+        learn_peak(gate, b, onset + t90 + LATE_BURST_STEPS);
 }
 
 static double masked_frames(const struct gate *gate, const struct band *band, double start_frame,

@@ -8,10 +8,11 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define SLICE_S 0.01 /* tracers and judge meet this often, at fixed frames: chunks cannot matter */
-#define CARRIED 0.46 /* of the rate: the band that a recording holds */
-#define HEADROOM 8.0 /* of a path's score over the threshold */
-#define MOST_PA 1e6F /* 240 dB re 1 uPa: more is a fault of the input, and would overflow a power */
+#define SLICE_S 0.01     /* tracers and judge meet this often, at fixed frames: chunks cannot matter */
+#define CARRIED 0.46     /* of the rate: the band that a recording holds */
+#define HEADROOM 8.0     /* of a path's score over the threshold */
+#define MOST_PA 1e6F     /* 240 dB re 1 uPa: more is a fault of the input, and would overflow a power */
+#define TAIL_HEARD 2.0F /* over the quietest time: 3 dB */
 #define MAX_OPEN 96
 #define MAX_BANDS 16
 #define PASS_BAND 0.4 /* of a decimated rate (dsp/decimate.h) */
@@ -319,6 +320,16 @@ void tones_push(struct tones *tones, const float *pascals, uint32_t n, const str
             run_slice(tones, sink);
         }
     }
+}
+
+void tones_hear_tail(struct tones *tones, const struct gate_tail *tail)
+{
+    for (uint32_t i = 0; i < tones->n_tracers; i++)
+        for (uint32_t b = 0; b < tail->n; b++) {
+            const struct gate_tail_band *band = &tail->bands[b];
+            tracer_set_tail(tones->tracers[i], band->low_hz, band->high_hz,
+                            band->masked || band->ratio > TAIL_HEARD);
+        }
 }
 
 void tones_finish(struct tones *tones, const struct found_sink *sink)

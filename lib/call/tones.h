@@ -11,6 +11,7 @@
 #include "base/status.h"
 #include "call/catalogue.h"
 #include "call/found.h"
+#include "call/gate.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -36,6 +37,9 @@ void tones_reset(struct tones *tones, uint64_t next_frame);
  * they make known, in the order of known_frame. How the samples are cut into pieces changes nothing. */
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink);
 
+/* What the own source's tail adds to what is pushed from now on: where it holds 3 dB more than the band
+ * does at its quietest, or is masked, the backgrounds know it for the tail. */
+void tones_hear_tail(struct tones *tones, const struct gate_tail *tail);
 /* Ends the sound: what is still open is judged and given. */
 void tones_finish(struct tones *tones, const struct found_sink *sink);
 

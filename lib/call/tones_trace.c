@@ -261,6 +261,14 @@ void tracer_push(struct tracer *tracer, const float *samples, uint32_t n, const 
     }
 }
 
+void tracer_set_tail(struct tracer *tracer, double low_hz, double high_hz, bool is_heard)
+{
+    double low = ceil(low_hz / tracer->bin_hz) - tracer->first_bin;
+    double high = ceil(high_hz / tracer->bin_hz) - tracer->first_bin;
+    background_set_tail(tracer->background, (uint32_t)fmax(0, low),
+                        (uint32_t)fmax(0, fmin(high, tracer->n_bins)), is_heard);
+}
+
 void tracer_end(struct tracer *tracer, uint64_t next_frame, const struct trace_sink *sink)
 {
     paths_end(tracer, sink);

@@ -62,6 +62,8 @@ void tracer_destroy(struct tracer *tracer);
 void tracer_push(struct tracer *tracer, const float *samples, uint32_t n, const struct trace_sink *sink);
 /* Ends the open contours; the next sample is input frame `next_frame`. The background is kept. */
 void tracer_end(struct tracer *tracer, uint64_t next_frame, const struct trace_sink *sink);
+/* From the next samples on the own source's tail is heard in [low_hz, high_hz) (`true`), or no more. */
+void tracer_set_tail(struct tracer *tracer, double low_hz, double high_hz, bool is_heard);
 /* Contours that are open now: their times, hz, low_hz, high_hz, bin_hz and mean_square
  * only. Returns how many were written. */
 uint32_t tracer_get_open(struct tracer *tracer, struct contour *out, uint32_t max_count);

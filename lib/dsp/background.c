@@ -15,6 +15,7 @@
 #define RESTART_RATIO 10.0F   /* a rise of all that is heard, while learning, begins anew */
 #define BROADBAND_SPEED 4.0   /* of learning, while all of a stretch has risen */
 #define STRETCH 32            /* bins whose median over frequency tells broadband sound */
+#define LEAST_STRETCH 8       /* bins that have a median worth the name */
 #define BROADBAND_RATIO 1.41F /* over the mean; 1.5 dB */
 
 /* What a step multiplies by. */
@@ -30,31 +31,43 @@ struct background {
     float caution;                /* what the estimate is raised by while it is young */
     uint64_t n_frames;
     float *quantile; /* [n_bins] */
+    float *tail;     /* [n_bins]: the same of a tail, to a factor; 0: not known */
+    bool *in_tail;   /* [stretches_of(n_bins)] */
 };
+
+static uint32_t stretches_of(uint32_t n_bins)
+{
+    return (n_bins + STRETCH - 1) / STRETCH;
+}
 
 enum status background_create(uint32_t n_bins, double frames_per_s, struct background **out)
 {
     if (n_bins == 0 || !(frames_per_s > 0))
         return STATUS_BAD_ARGUMENT;
     struct background *background = calloc(1, sizeof *background);
-    float *quantile = calloc(n_bins, sizeof *quantile);
-    if (!background || !quantile) {
-        free(background);
-        free(quantile);
+    if (!background)
+        return STATUS_NO_MEMORY;
+    background->quantile = calloc(n_bins, sizeof *background->quantile);
+    background->tail = calloc(n_bins, sizeof *background->tail);
+    background->in_tail = calloc(stretches_of(n_bins), sizeof *background->in_tail);
+    if (!background->quantile || !background->tail || !background->in_tail) {
+        background_destroy(background);
         return STATUS_NO_MEMORY;
     }
     background->n_bins = n_bins;
     background->frames_per_s = frames_per_s;
     background->step_db = RISE_DB_S / (QUANTILE * frames_per_s);
-    background->quantile = quantile;
     *out = background;
     return STATUS_OK;
 }
 
 void background_destroy(struct background *background)
 {
-    if (background)
-        free(background->quantile);
+    if (!background)
+        return;
+    free(background->quantile);
+    free(background->tail);
+    free(background->in_tail);
     free(background);
 }
 
@@ -68,6 +81,14 @@ void background_raise(struct background *background, uint32_t bin, float power)
     float quantile = power * (float)QUANTILE_OF_MEAN;
     if (bin < background->n_bins && background->quantile[bin] < quantile)
         background->quantile[bin] = quantile;
+}
+
+void background_set_tail(struct background *background, uint32_t low, uint32_t high, bool is_heard)
+{
+    const uint32_t n = background->n_bins, n_stretches = stretches_of(n);
+    for (uint32_t i = 0; i < n_stretches; i++)
+        if (n * i / n_stretches < high && n * (i + 1) / n_stretches > low)
+            background->in_tail[i] = is_heard;
 }
 
 /* The first frame: every bin starts from the mean over its neighbours, which is nearer than its own power. */
@@ -169,7 +190,7 @@ static float median(const float *ratio, uint32_t n)
 /* Returns whether the stretch was raised. */
 static bool raise_broadband(const float *power, float *level, uint32_t n, uint32_t n_above)
 {
-    if (n < 8 || 2 * n_above <= n)
+    if (n < LEAST_STRETCH || 2 * n_above <= n)
         return false;
     float ratio[STRETCH];
     for (uint32_t k = 0; k < n; k++)
@@ -180,9 +201,62 @@ static bool raise_broadband(const float *power, float *level, uint32_t n, uint32
     return true;
 }
 
+/* Each bin starts from the mean over its neighbours. */
+static void begin_colour(const float *power, float *tail, uint32_t n)
+{
+    const uint32_t reach = 4;
+    for (uint32_t k = 0; k < n; k++) {
+        uint32_t low = k > reach ? k - reach : 0, high = k + reach < n ? k + reach : n - 1;
+        double sum = 0;
+        for (uint32_t j = low; j <= high; j++)
+            sum += (double)power[j];
+        tail[k] = (float)(QUANTILE_OF_MEAN * sum / (high - low + 1) + 1e-30);
+    }
+}
+
+/* How loud the tail is now, over its colour: told by the half of the bins in which it stands out most. */
+static float gain_of_tail(const float *power, const float *quantile, const float *tail, uint32_t n)
+{
+    float share[STRETCH], ratio[STRETCH];
+    uint32_t n_told = 0;
+    for (uint32_t k = 0; k < n; k++)
+        share[k] = tail[k] / quantile[k];
+    const float middle = median(share, n);
+    for (uint32_t k = 0; k < n; k++)
+        if (share[k] >= middle)
+            ratio[n_told++] = power[k] / tail[k];
+    return median(ratio, n_told) * (float)QUANTILE_OF_MEAN / MEDIAN_OF_MEAN;
+}
+
+/* While a tail is heard: each bin's level is what the tail's colour makes of its loudness now, where that is
+ * more than without the tail. Bins that it raises teach the colour, the others the background. */
+static void judge_tail(const struct background *background, const float *power, float *quantile, float *tail,
+                       uint32_t n, float scale, float *level)
+{
+    float told[STRETCH], colour[STRETCH];
+    bool raises[STRETCH];
+    if (tail[0] <= 0)
+        begin_colour(power, tail, n);
+    const float gain = gain_of_tail(power, quantile, tail, n);
+    for (uint32_t k = 0; k < n; k++) {
+        raises[k] = gain * tail[k] > BROADBAND_RATIO * quantile[k];
+        level[k] = (raises[k] ? gain * tail[k] : quantile[k]) * scale;
+        told[k] = power[k] / gain;
+        colour[k] = tail[k];
+    }
+    learn(told, tail, n, background->fast_step);
+    memcpy(told, quantile, n * sizeof told[0]);
+    learn(power, quantile, n, background->step);
+    for (uint32_t k = 0; k < n; k++)
+        if (raises[k])
+            quantile[k] = told[k];
+        else
+            tail[k] = colour[k];
+}
+
 void background_push(struct background *background, const float *power, float *out_background)
 {
-    const uint32_t n = background->n_bins, n_stretches = (n + STRETCH - 1) / STRETCH;
+    const uint32_t n = background->n_bins, n_stretches = stretches_of(n);
     if (background->n_frames > 0 && !background_is_ready(background) && has_begun(background, power))
         background->n_frames = 0;
     if (background->n_frames == 0)
@@ -192,6 +266,11 @@ void background_push(struct background *background, const float *power, float *o
     for (uint32_t i = 0; i < n_stretches; i++) {
         uint32_t low = n * i / n_stretches, high = n * (i + 1) / n_stretches;
         float *quantile = background->quantile + low;
+        if (background->in_tail[i] && high - low >= LEAST_STRETCH) {
+            judge_tail(background, power + low, quantile, background->tail + low, high - low, scale,
+                       out_background + low);
+            continue;
+        }
         uint32_t n_above = expect(power + low, quantile, high - low, scale, out_background + low);
         bool raised = raise_broadband(power + low, out_background + low, high - low, n_above);
         learn(power + low, quantile, high - low, raised ? background->fast_step : background->step);

@@ -7,7 +7,10 @@
  * small. The quantile is turned into a mean power by the exponential distribution that noise has in a bin of
  * one spectrum. What raises most of a stretch of 32 bins at once (a blow, a shot, a ship that comes near) is
  * broadband and raises their background at once, by the median over frequency (after Gillespie et al. 2013).
- */
+ *
+ * Where one says that the tail of a known impulse is heard, what it raises teaches the background nothing;
+ * its colour (each bin over the median) is learned by itself, so that in the tail each bin is judged by what
+ * the tail holds there. */
 #ifndef DSP_BACKGROUND_H
 #define DSP_BACKGROUND_H
 
@@ -23,6 +26,8 @@ void background_destroy(struct background *background);
 /* The mean power of each bin that is expected without a call in this frame, [n_bins], both ways; then learns
  * from the frame. */
 void background_push(struct background *background, const float *power, float *out_background);
+/* From the next frame on the tail of a known impulse is heard in bins [low, high) (`true`), or no more. */
+void background_set_tail(struct background *background, uint32_t low, uint32_t high, bool is_heard);
 /* Whether enough frames (1 s) were heard for the estimate to be trusted. */
 bool background_is_ready(const struct background *background);
 /* Takes `power` as the mean of this bin from now on, where it is more: a steady line was recognised. */

@@ -151,6 +151,11 @@ bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_chann
         gate_push(ear->gate, ear->pascals, n, &masked);
     if (ear->impulses)
         impulse_finder_push(ear->impulses, ear->pascals, n, &impulses);
+    if (ear->listens && ear->tail_of) {
+        struct gate_tail tail;
+        gate_get_tail(ear->tail_of, &tail);
+        tones_hear_tail(ear->tones, &tail);
+    }
     if (ear->listens) {
         tones_push(ear->tones, ear->pascals, n, &calls);
         pulses_push(ear->pulses, ear->pascals, n, &calls);

@@ -39,6 +39,7 @@ struct ear {
     struct health *health;
     struct impulse_finder *impulses; /* NULL on channels whose impulses nobody asks for */
     struct gate *gate;               /* NULL on all but the channel that gates the stream */
+    const struct gate *tail_of;      /* the gate that gates the stream; borrowed, NULL where there is none */
     struct tones *tones;             /* NULL on channels that do not listen, as is pulses */
     struct pulses *pulses;
     struct ear_sink sink; /* borrowed context */

@@ -204,6 +204,8 @@ static enum status create_ears(struct listen *listen)
         if (status != STATUS_OK)
             return status;
         listening += listen->ears[i].listens;
+        if (listen->gate_channel > 0 && ear.channel >= listen->gate_channel)
+            listen->ears[i].tail_of = listen->ears[listen->gate_channel - 1].gate;
     }
     joiner_reset(&listen->joiner, listening > 1 ? (uint64_t)(HOLD_S * setup->rate_hz) : 0);
     return listen_create_calls(listen);
