@@ -94,7 +94,7 @@ static void read_train(struct group_reader *group, struct train_shape *train)
     group_number(group, "upper_high_hz", READER_OPTIONAL, 0, 1e6, &train->upper_high_hz);
     group_number(group, "min_upper_db", READER_OPTIONAL, -60, 80, &train->min_upper_db);
     read_pulse_limits(group, train);
-    group_number(group, "echo_s", READER_OPTIONAL, 1e-5, 0.5, &train->echo_s);
+    group_number(group, "echo_s", READER_OPTIONAL, 1e-5, 5, &train->echo_s);
     group_number(group, "tail_s", READER_OPTIONAL, 0, 5, &train->tail_s);
     train->min_pulses = (uint32_t)min_pulses;
     check_order(group, train->pulse_s, train->max_pulse_s, "pulse_s", "max_pulse_s");

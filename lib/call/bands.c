@@ -8,7 +8,10 @@
 
 #define SECTIONS 3
 #define WINDOW_POINTS 96
-#define SPARE_BLOCKS 16       /* for which a row has room before its history is moved to its front */
+#define SPARE_BLOCKS                                                                                         \
+    16                    /* for which a row has room at least before its history is moved to its front, ... \
+                           */
+#define SPARE_HISTORIES 3 /* ... and so many times the history */
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
 
 /* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
@@ -36,56 +39,76 @@ bool bands_rate_carries(double rate_hz, struct band_edges edges)
     return edges.low_hz > 0 && edges.high_hz > edges.low_hz && edges.high_hz <= BANDS_HIGHEST * rate_hz;
 }
 
-static double energy_centre(struct filter filter)
+/* The filter's answer to one sample, until it has died away; gives its length, at most RESPONSE_FRAMES. */
+static uint32_t find_response(struct filter filter, double *out)
+{
+    double recent = 0, greatest = 0;
+    uint32_t n = 0;
+    while (n < RESPONSE_FRAMES) {
+        out[n] = filter_step(&filter, n == 0);
+        recent = fmax(recent * 0.998, fabs(out[n]));
+        greatest = fmax(greatest, recent);
+        n++;
+        if (recent < 1e-4 * greatest)
+            break;
+    }
+    return n;
+}
+
+/* Centre of the response's energy, in frames. */
+static double energy_centre(const double *response, uint32_t n)
 {
     double energy = 0, moment = 0;
-    for (int k = 0; k < RESPONSE_FRAMES; k++) {
-        double h = filter_step(&filter, k == 0);
-        energy += h * h;
-        moment += k * h * h;
+    for (uint32_t k = 0; k < n; k++) {
+        energy += response[k] * response[k];
+        moment += k * response[k] * response[k];
     }
     return moment / energy;
 }
 
 /* Autocorrelation of filtered white noise: the response against itself, lag frames later. */
-static double autocorrelation(struct filter filter, uint32_t lag)
+static double autocorrelation(const double *response, uint32_t n, uint32_t lag)
 {
-    struct filter later = filter;
-    for (uint32_t k = 0; k < lag; k++)
-        filter_step(&later, k == 0);
-    double sum = 0, recent = 0, greatest = 0;
-    for (uint32_t k = 0; k < RESPONSE_FRAMES; k++) {
-        double h = filter_step(&filter, k == 0);
-        sum += h * filter_step(&later, k + lag == 0);
-        recent = fmax(recent * 0.998, fabs(h));
-        greatest = fmax(greatest, recent);
-        if (recent < 1e-4 * greatest)
-            break;
-    }
+    double sum = 0;
+    for (uint32_t k = lag; k < n; k++)
+        sum += response[k] * response[k - lag];
     return sum;
 }
 
-/* Traces of the first powers of the correlation matrix R of m points of the window: m, tr R^2, tr R^3. The
- * sum of squares of Gaussian variables so correlated has the cumulants m, 2 tr R^2, 8 tr R^3. */
+/* Traces of the second and third power of the matrix of correlations r[|i - j|] of m points. */
+static void find_traces(const double *r, uint32_t m, double *matrix, double *out_square, double *out_cube)
+{
+    for (uint32_t i = 0; i < m; i++)
+        for (uint32_t j = 0; j < m; j++)
+            matrix[i * m + j] = r[i > j ? i - j : j - i];
+    double square = 0, cube = 0;
+    for (uint32_t i = 0; i < m; i++)
+        for (uint32_t j = i; j < m; j++) {
+            double ij = matrix[i * m + j], product = 0;
+            for (uint32_t k = 0; k < m; k++)
+                product += matrix[i * m + k] * matrix[j * m + k];
+            square += (i == j ? 1 : 2) * ij * ij;
+            cube += (i == j ? 1 : 2) * ij * product;
+        }
+    *out_square = square;
+    *out_cube = cube;
+}
+
+/* The sum of squares of m Gaussian variables so correlated has the cumulants m, 2 tr R^2, 8 tr R^3. */
 enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
                                  struct window_statistics *out)
 {
     uint32_t n = n_slots * bands->slot_frames;
     uint32_t m = n < WINDOW_POINTS ? n : WINDOW_POINTS; /* the correlation is smooth between them */
-    double *r = malloc(m * sizeof *r);
+    double *r = malloc((m + (size_t)m * m + RESPONSE_FRAMES) * sizeof *r), square, cube;
     if (!r)
         return STATUS_NO_MEMORY;
-    double zero = autocorrelation(bands->filters[b], 0);
+    double *matrix = r + m, *response = matrix + (size_t)m * m;
+    uint32_t length = find_response(bands->filters[b], response);
     for (uint32_t k = 0; k < m; k++)
-        r[k] = autocorrelation(bands->filters[b], (uint32_t)((uint64_t)k * n / m)) / zero;
-    double square = 0, cube = 0;
-    for (uint32_t i = 0; i < m; i++)
-        for (uint32_t j = 0; j < m; j++) {
-            double ij = r[i > j ? i - j : j - i];
-            square += ij * ij;
-            for (uint32_t k = 0; k < m; k++)
-                cube += ij * r[j > k ? j - k : k - j] * r[k > i ? k - i : i - k];
-        }
+        r[k] = autocorrelation(response, length, (uint32_t)((uint64_t)k * n / m)) /
+               autocorrelation(response, length, 0);
+    find_traces(r, m, matrix, &square, &cube);
     free(r);
     out->freedom = (double)m * m / square;
     out->skewness = 8 * cube / pow(2 * square, 1.5);
@@ -143,17 +166,21 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->slot_frames = slot_frames;
     bands->block_slots = block_slots;
     bands->history_slots = bands->at = history_slots;
-    bands->stride = history_slots + SPARE_BLOCKS * block_slots;
+    uint32_t spare = SPARE_HISTORIES * history_slots / block_slots + SPARE_BLOCKS;
+    bands->stride = history_slots + spare * block_slots;
     bands->power = calloc((size_t)bands->n_groups * LANES * bands->stride, sizeof(float));
     bands->samples = calloc((size_t)bands->stride * slot_frames, sizeof(float));
-    if (!bands->power || !bands->samples) {
+    double *response = malloc(RESPONSE_FRAMES * sizeof *response);
+    if (!bands->power || !bands->samples || !response) {
+        free(response);
         bands_destroy(bands);
         return STATUS_NO_MEMORY;
     }
     for (uint32_t b = 0; b < n; b++) {
         filter_band_pass(SECTIONS, edges[b].low_hz, edges[b].high_hz, rate_hz, &bands->filters[b]);
-        bands->delay[b] = energy_centre(bands->filters[b]);
+        bands->delay[b] = energy_centre(response, find_response(bands->filters[b], response));
     }
+    free(response);
     for (uint32_t g = 0; g < bands->n_groups; g++)
         fill_group(bands, g);
     *out = bands;

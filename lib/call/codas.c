@@ -2,29 +2,27 @@
 #include "call/codas.h"
 #include "base/median.h"
 #include "base/units.h"
+#include "call/alike.h"
 #include <math.h>
 #include <stdbool.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define MOST 96       /* pulses of a stretch */
-#define STRETCH_S 6.0 /* after so long it is looked at, quiet or not */
-#define KEPT_S 3.0    /* of it, for what is still going on */
-#define ALIKE_DB 3.0  /* spread of the level between clicks of one coda; a judgement, no source */
-#define APART_DB 8.0  /* and between animals; likewise */
-#define LEVELS 24     /* steps of 3 dB in which stray pulses are counted */
+#define MOST ALIKE_MOST /* pulses of a stretch */
+#define STRETCH_S 6.0   /* after so long it is looked at, quiet or not */
+#define KEPT_S 3.0      /* of it, for what is still going on */
+#define LEVELS 24       /* steps of 3 dB in which stray pulses are counted */
 #define LEVEL_STEP_DB 3
 #define RATE_INTERVALS 60
 #define BACKGROUND_DOUBT_DB 1.0 /* by which the background may be too low: it is young, or follows */
-#define MOST_PASSES 8
-#define JOINS_FROM -2.5  /* ratio */
-#define MACHINE_PULSES 4 /* of a series as regular as that: no whale's */
+#define MACHINE_PULSES 4        /* of a series as regular as that: no whale's */
 #define NONE UINT32_MAX
 
 struct codas {
     struct call_class call_class;
     double rate_hz, memory_s;
     struct noise_rate noise;
+    struct alike *alike;
     double rate_above[LEVELS]; /* running, of pulses tied to nothing at each level or more, a second */
     double counted_until_s;
     uint64_t n_pulses; /* taken since the last reset */
@@ -33,7 +31,6 @@ struct codas {
     struct pulse pulses[MOST];
     uint64_t numbers[MOST];
     uint32_t group[MOST]; /* of each pulse; a group has the number of its first pulse */
-    float ratio[MOST][MOST];
     bool hidden[MOST];
     uint64_t members[MOST];
     double sorted[MOST], arrivals[MOST];
@@ -49,6 +46,10 @@ enum status codas_create(const struct call_class *call_class, double rate_hz, st
     codas->rate_hz = rate_hz;
     codas->memory_s = RATE_INTERVALS * call_class->train.max_interval_s;
     codas->noise = noise;
+    if (alike_create(&codas->alike) != STATUS_OK) {
+        codas_destroy(codas);
+        return STATUS_NO_MEMORY;
+    }
     codas_reset(codas);
     *out = codas;
     return STATUS_OK;
@@ -64,150 +65,11 @@ void codas_reset(struct codas *codas)
 
 /* ---- which belong together */
 
-/* One animal against two, of shape and level. */
-static double likeness(const struct pulse *a, const struct pulse *b)
-{
-    double alike = ALIKE_DB * ALIKE_DB, apart = APART_DB * APART_DB;
-    double difference = units_power_db(a->snr / b->snr);
-    double level = log(apart / alike) / 2 - difference * difference / 2 * (1 / alike - 1 / apart);
-    return pulse_shape_likeness(&a->shape, &b->shape) + level;
-}
-
-static double pair_ratio(const struct codas *codas, const struct pulse *a, const struct pulse *b)
-{
-    if (fabs(a->frame - b->frame) < codas->call_class.train.min_interval_s * codas->rate_hz)
-        return -INFINITY;
-    return likeness(a, b);
-}
-
-/* What the pulses of a group look like together, `without` left out; gives how many. */
-static uint32_t mean_of_group(const struct codas *codas, uint32_t g, uint32_t without, struct pulse *out)
-{
-    memset(out, 0, sizeof *out);
-    uint32_t count = 0;
-    double weights[PULSE_SHAPE_BANDS] = {0}, level_db = 0, doubt = 0;
-    for (uint32_t j = 0; j < codas->n; j++) {
-        if (codas->group[j] != g || j == without)
-            continue;
-        const struct pulse_shape *shape = &codas->pulses[j].shape;
-        for (uint32_t b = 0; b < PULSE_SHAPE_BANDS; b++) {
-            double weight = 1 / (1 + (double)shape->doubt_db[b] * shape->doubt_db[b]);
-            weights[b] += weight;
-            out->shape.bands_db[b] += (float)(weight * shape->bands_db[b]);
-        }
-        for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++)
-            out->shape.echoes[l] += shape->echoes[l];
-        doubt += (double)shape->echoes_doubt * shape->echoes_doubt;
-        level_db += units_power_db(codas->pulses[j].snr);
-        count++;
-    }
-    for (uint32_t b = 0; b < PULSE_SHAPE_BANDS && count; b++) {
-        out->shape.bands_db[b] /= (float)weights[b];
-        out->shape.doubt_db[b] = (float)sqrt(fmax(0, 1 / weights[b] - 1.0 / count));
-    }
-    for (uint32_t l = 0; l < PULSE_SHAPE_LAGS && count; l++)
-        out->shape.echoes[l] /= (float)count;
-    pulse_shape_centre(&out->shape);
-    out->shape.echoes_doubt = (float)(sqrt(doubt) / fmax(1, count));
-    out->snr = units_power_ratio(level_db / fmax(1, count));
-    return count;
-}
-
-/* Ratio between a pulse and the mean of a group, itself left out; -INFINITY where it cannot be of it, NAN for
- * an empty group. */
-static double ratio_to_group(const struct codas *codas, uint32_t pulse, uint32_t g)
-{
-    for (uint32_t j = 0; j < codas->n; j++)
-        if (codas->group[j] == g && j != pulse && isinf(codas->ratio[pulse][j]))
-            return -INFINITY;
-    struct pulse mean;
-    if (!mean_of_group(codas, g, pulse, &mean))
-        return NAN;
-    return likeness(&codas->pulses[pulse], &mean);
-}
-
-static uint32_t group_size(const struct codas *codas, uint32_t g)
-{
-    uint32_t count = 0;
-    for (uint32_t j = 0; j < codas->n; j++)
-        count += codas->group[j] == g;
-    return count;
-}
-
-/* Lets each pulse go to the group that it is most like; one of a group too small for a coda goes to a coda
- * that it is not too unlike, since a stray among them is rarer than a coda's click. */
-static void settle(struct codas *codas)
-{
-    uint32_t least = codas->call_class.train.min_pulses;
-    bool moved = true;
-    for (uint32_t pass = 0; moved && pass < MOST_PASSES; pass++) {
-        moved = false;
-        for (uint32_t i = 0; i < codas->n; i++) {
-            bool loose = group_size(codas, codas->group[i]) < least;
-            double best = ratio_to_group(codas, i, codas->group[i]);
-            best = loose ? JOINS_FROM : isnan(best) ? 0 : best;
-            uint32_t to = codas->group[i];
-            for (uint32_t g = 0; g < codas->n; g++) {
-                double ratio =
-                    g != codas->group[i] && group_size(codas, g) >= least ? ratio_to_group(codas, i, g) : NAN;
-                if (ratio > best) {
-                    best = ratio;
-                    to = g;
-                }
-            }
-            moved |= to != codas->group[i];
-            codas->group[i] = to;
-        }
-    }
-}
-
-/* Mean ratio between two groups, -INFINITY when two of their pulses cannot be of one animal. */
-static double mean_ratio(const struct codas *codas, uint32_t g, uint32_t h)
-{
-    double sum = 0;
-    uint32_t count = 0;
-    for (uint32_t i = 0; i < codas->n; i++)
-        for (uint32_t j = 0; codas->group[i] == g && j < codas->n; j++)
-            if (codas->group[j] == h) {
-                sum += codas->ratio[i][j];
-                count++;
-            }
-    return sum / count;
-}
-
-/* Merges the two groups with the greatest mean ratio; false when none is above 0. */
-static bool merge_best(struct codas *codas)
-{
-    double best = 0;
-    uint32_t from = NONE, into = NONE;
-    for (uint32_t g = 0; g < codas->n; g++)
-        for (uint32_t h = g + 1; codas->group[g] == g && h < codas->n; h++) {
-            double mean = codas->group[h] == h ? mean_ratio(codas, g, h) : 0;
-            if (mean > best) {
-                best = mean;
-                into = g;
-                from = h;
-            }
-        }
-    for (uint32_t i = 0; into != NONE && i < codas->n; i++)
-        if (codas->group[i] == from)
-            codas->group[i] = into;
-    return into != NONE;
-}
-
 static void find_groups(struct codas *codas)
 {
-    for (uint32_t i = 0; i < codas->n; i++) {
-        codas->group[i] = i;
-        for (uint32_t j = 0; j < i; j++) {
-            bool hidden = codas->hidden[i] || codas->hidden[j];
-            double ratio = hidden ? -INFINITY : pair_ratio(codas, &codas->pulses[i], &codas->pulses[j]);
-            codas->ratio[i][j] = codas->ratio[j][i] = (float)ratio;
-        }
-    }
-    while (merge_best(codas))
-        ;
-    settle(codas);
+    double least_apart = codas->call_class.train.min_interval_s * codas->rate_hz;
+    alike_find(codas->alike, codas->pulses, codas->hidden, codas->n, least_apart,
+               codas->call_class.train.min_pulses, codas->group);
     /* A pause ends a coda: what comes after is a group of its own. */
     double pause = codas->call_class.train.max_interval_s * codas->rate_hz;
     for (uint32_t i = 0; i < codas->n; i++) {
@@ -253,7 +115,7 @@ static double chance_rate(const struct codas *codas, const struct pulse *pulse, 
     double count = codas->rate_above[level > 0 ? level - 1 : 0] * kept * codas->memory_s;
     double heard_s = fmax(codas->call_class.train.max_interval_s, fmin(codas->memory_s, now_s));
     return (count + 1 + sqrt(count)) / heard_s +
-           noise_rate_competing(&codas->noise, doubt * pulse->snr, least_snr, ALIKE_DB);
+           noise_rate_competing(&codas->noise, doubt * pulse->snr, least_snr, ALIKE_SPREAD_DB);
 }
 
 /* members[0..n) of one group, in order of arrival. */
@@ -397,5 +259,8 @@ void codas_hide(struct codas *codas, double start_frame, double end_frame, uint6
 
 void codas_destroy(struct codas *codas)
 {
+    if (!codas)
+        return;
+    alike_destroy(codas->alike);
     free(codas);
 }

@@ -1,16 +1,11 @@
 /* Codas: short series of pulses of one class that are tied by how they look and how loud they are, whatever
  * their rhythm; those of animals that call at the same time are told apart.
  *
- * Method: the pulses of a stretch are gathered until a longest interval has passed without one. Every two of
- * them have a log-likelihood ratio, one animal against two: the likeness of their shapes
- * (call/pulse_shape.h) and their difference in level, normal with a spread of 3 dB or of 8 dB; two that
- * follow each other faster than the class does are of two animals. Groups are merged, those with the greatest
- * mean ratio first, while that is above 0 (average linkage, Sokal and Michener 1958; clustering clicks by
- * their likeness after Gubnitsky and Diamant 2024, arXiv 2407.17119); then each pulse goes to the group whose
- * mean it is most like. A group is given as a train when it has
- * min_pulses and its times are less likely by chance than the class allows: each interval I has density 1 /
- * (I ln(max / min)) against the rate of the pulses that were tied to nothing in the last 60 longest intervals
- * and those that noise gives, as in call/trains.h.
+ * Method: the pulses of a stretch are gathered until a longest interval has passed without one, and grouped
+ * by likeness (call/alike.h; clustering clicks by their likeness after Gubnitsky and Diamant 2024, arXiv
+ * 2407.17119). A group is given as a train when it has min_pulses and its times are less likely by chance
+ * than the class allows: each interval I has density 1 / (I ln(max / min)) against the rate of the pulses
+ * that were tied to nothing in the last 60 longest intervals and those that noise gives, as in call/trains.h.
  *
  * Call order and ownership are those of call/trains.h. */
 #ifndef CALL_CODAS_H

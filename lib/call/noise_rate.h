@@ -5,7 +5,7 @@
 
 #include "call/bands.h"
 
-#define NOISE_RATE_POINTS 512
+#define NOISE_RATE_POINTS 128
 
 /* Pulses a second that noise alone gives at this snr (ratio) or more. */
 struct noise_rate {

@@ -1,6 +1,7 @@
 /* What one pulse looks like. */
 #include "call/pulse_shape.h"
 #include "base/units.h"
+#include "dsp/lanes.h"
 #include <fftw3.h>
 #include <math.h>
 #include <stdlib.h>
@@ -14,8 +15,10 @@
 #define SWEEP_RATIO 0.158 /* 8 dB */
 #define WIDE_RATIO 4.0    /* a band so wide is divided in equal ratios, a narrower one in equal steps */
 #define MOST_DOUBT_DB 20.0
-#define NOISE_ROOT 0.9   /* mean of the square root of a slot's noise power over the root of its mean */
-#define NOISE_SPREAD 0.4 /* and its standard deviation; both between those of 1 and 4 degrees of freedom */
+#define FIRST_LAG 3.0     /* pulse lengths: before it a pulse is its own echo */
+#define REACH_PULSES 50.0 /* of the autocorrelation, likewise */
+#define NOISE_ROOT 0.9    /* mean of the square root of a slot's noise power over the root of its mean */
+#define NOISE_SPREAD 0.4  /* and its standard deviation; both between those of 1 and 4 degrees of freedom */
 /* Judgements, no source: how much neighbouring clicks of one animal differ, how much more those of two; parts
  * of a spectrum that lie side by side are not independent; profiles of one animal correlate by more than
  * ECHO_MIDDLE. */
@@ -30,9 +33,9 @@ struct pulse_shaper {
     uint32_t n, segment;                       /* of the transform, and of the sound in it */
     uint32_t edge_bins[PULSE_SHAPE_BANDS + 1]; /* part b is [edge b, edge b + 1) */
     double window_energy;
-    double pulse_slots;
-    uint32_t reach, first_lag; /* slots */
-    double lag_step;           /* slots */
+    uint32_t bin_slots;        /* of the envelope: half a pulse */
+    uint32_t reach, first_lag; /* bins */
+    double lag_step;           /* bins */
     float *window, *frame;
     fftwf_complex *bins, *analytic;
     fftwf_plan forward, backward;
@@ -78,10 +81,12 @@ enum status pulse_shaper_create(const struct call_class *call_class, double rate
     shaper->n = 32;
     while (shaper->n < need && shaper->n < MOST_FRAMES)
         shaper->n *= 2;
-    shaper->pulse_slots = fmax(1, pulse_s / slot_s);
-    double reach_s = fmin(PULSE_SHAPE_REACH_S, call_class->train.min_interval_s / 2);
-    shaper->first_lag = (uint32_t)ceil(3 * shaper->pulse_slots);
-    shaper->reach = (uint32_t)fmax(reach_s / slot_s, shaper->first_lag + PULSE_SHAPE_LAGS);
+    shaper->bin_slots = (uint32_t)fmax(1, round(pulse_s / slot_s / 2));
+    double bin_s = shaper->bin_slots * slot_s;
+    double reach_s =
+        fmin(fmin(PULSE_SHAPE_REACH_S, REACH_PULSES * pulse_s), call_class->train.min_interval_s / 2);
+    shaper->first_lag = (uint32_t)ceil(FIRST_LAG * pulse_s / bin_s);
+    shaper->reach = (uint32_t)fmax(reach_s / bin_s, shaper->first_lag + PULSE_SHAPE_LAGS);
     shaper->lag_step = (double)(shaper->reach - shaper->first_lag) / PULSE_SHAPE_LAGS;
     shaper->window = calloc(shaper->segment, sizeof(float));
     shaper->envelope = calloc(3 * (size_t)shaper->reach, sizeof(float));
@@ -112,7 +117,7 @@ uint32_t pulse_shaper_frames(const struct pulse_shaper *shaper)
 
 uint32_t pulse_shaper_slots(const struct pulse_shaper *shaper)
 {
-    return shaper->reach;
+    return shaper->reach * shaper->bin_slots;
 }
 
 /* The segment around the arrival, its transform in bins[], and its class's part, analytic, in analytic[]. */
@@ -231,27 +236,52 @@ static void find_time_course(const struct pulse_shaper *shaper, struct pulse_sha
     out->sweep_hz_s = (float)slope_between(shaper, from, to);
 }
 
-static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out)
+/* Root of the power over the noise's, in bins from one reach before the arrival to two after it; gives its
+ * energy. */
+static double find_envelope(struct pulse_shaper *shaper, const struct pulse_sound *sound)
 {
-    int64_t first = -(int64_t)shaper->reach, n = 3 * (int64_t)shaper->reach;
-    double noise = sqrt(sound->background_pa2), energy = 0;
-    for (int64_t i = 0; i < n; i++) {
-        int64_t slot = first + i;
-        bool there = slot >= -sound->slots_before && slot < sound->slots_after;
-        shaper->envelope[i] = there ? (float)(sqrt((double)sound->power[slot]) - NOISE_ROOT * noise) : 0;
+    double noise = NOISE_ROOT * sqrt(sound->background_pa2), energy = 0;
+    for (uint32_t i = 0; i < 3 * shaper->reach; i++) {
+        int64_t first = ((int64_t)i - shaper->reach) * shaper->bin_slots, last = first + shaper->bin_slots;
+        float sum = 0;
+        if (first >= -sound->slots_before && last <= sound->slots_after)
+            for (int64_t slot = first; slot < last; slot++)
+                sum += sound->power[slot];
+        shaper->envelope[i] = sum > 0 ? sqrtf(sum / (float)shaper->bin_slots) - (float)noise : 0;
         energy += (double)shaper->envelope[i] * shaper->envelope[i];
     }
-    double spread = NOISE_SPREAD * noise, variance = spread * spread;
-    double one = (2 * energy * variance + (double)n * variance * variance) / fmax(energy * energy, 1e-300);
-    out->echoes_doubt = (float)sqrt(one * shaper->lag_step / (shaper->pulse_slots * shaper->pulse_slots));
+    return energy;
+}
+
+static float product(const float *a, const float *b, uint32_t n)
+{
+    lanes first = {0}, second = {0};
+    uint32_t i = 0;
+    for (; i + 2 * LANES <= n; i += 2 * LANES) {
+        first += lanes_load(a + i) * lanes_load(b + i);
+        second += lanes_load(a + i + LANES) * lanes_load(b + i + LANES);
+    }
+    double sum = lanes_sum(first + second);
+    for (; i < n; i++)
+        sum += a[i] * b[i];
+    return (float)sum;
+}
+
+static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out)
+{
+    uint32_t n = 3 * shaper->reach;
+    double energy = find_envelope(shaper, sound);
+    double spread = NOISE_SPREAD * sqrt(sound->background_pa2 / shaper->bin_slots),
+           variance = spread * spread;
+    double one = (2 * energy * variance + n * variance * variance) / fmax(energy * energy, 1e-300);
+    out->echoes_doubt = (float)sqrt(one * fmax(1, shaper->lag_step));
     for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++) {
-        double sum = 0;
-        int64_t from = shaper->first_lag + (int64_t)(l * shaper->lag_step);
-        int64_t to = shaper->first_lag + (int64_t)((l + 1) * shaper->lag_step);
-        for (int64_t lag = from; lag < to; lag++)
-            for (int64_t i = 0; i + lag < n; i++)
-                sum += shaper->envelope[i] * shaper->envelope[i + lag];
-        out->echoes[l] = (float)(sum / fmax(energy, 1e-300) / shaper->pulse_slots);
+        uint32_t from = shaper->first_lag + (uint32_t)(l * shaper->lag_step);
+        uint32_t to = shaper->first_lag + (uint32_t)((l + 1) * shaper->lag_step);
+        float sum = 0;
+        for (uint32_t lag = from; lag < to; lag++)
+            sum += product(shaper->envelope, shaper->envelope + lag, n - lag);
+        out->echoes[l] = sum / (float)fmax(energy, 1e-30);
     }
 }
 

@@ -20,6 +20,7 @@
 #define DECIMATED_RATE 4.8
 #define PIECE_FRAMES 1024 /* pushed to a decimator at a time */
 #define MAX_STAGES 8
+#define NOWHERE UINT32_MAX
 
 /* Classes that run at one rate. */
 struct stage {
@@ -27,6 +28,9 @@ struct stage {
     double rate_hz;
     uint32_t slot_frames, block_slots, block_frames, history_slots;
     struct decimator *decimator; /* NULL for factor 1 */
+    uint32_t from;               /* stage whose samples it takes; NOWHERE: the channel's own */
+    double delay_frames;         /* of all decimators before it, in frames of the channel */
+    float *decimated;            /* [PIECE_FRAMES + 1] */
     struct bands *bands;
     struct band_edges edges[BANDS_MAX];
     uint32_t n_edges;
@@ -51,7 +55,6 @@ struct pulses {
     const struct call_class *classes; /* borrowed */
     struct stage stages[MAX_STAGES];
     struct ear ears[CATALOGUE_MAX_CLASSES];
-    float decimated[PIECE_FRAMES + 1];
     const struct found_sink *sink; /* of the push at hand */
     uint64_t known_frame;
     const struct train *given; /* while the sink has it */
@@ -134,6 +137,43 @@ static enum status add_ear(struct pulses *pulses, const struct call_class *call_
     return STATUS_OK;
 }
 
+/* A stage takes the samples of the slowest stage before it that is still faster: what both need is filtered
+ * once. Stages stand in order of their factors, which are powers of two. */
+static enum status create_decimator(struct pulses *pulses, struct stage *stage)
+{
+    stage->from = NOWHERE;
+    uint32_t factor = stage->factor;
+    for (uint32_t s = 0; &pulses->stages[s] != stage; s++)
+        if (pulses->stages[s].factor > 1) {
+            stage->from = s;
+            factor = stage->factor / pulses->stages[s].factor;
+        }
+    enum status status = decimator_create(factor, &stage->decimator);
+    if (status != STATUS_OK)
+        return status;
+    stage->delay_frames = decimator_get_delay(stage->decimator);
+    if (stage->from != NOWHERE) {
+        const struct stage *from = &pulses->stages[stage->from];
+        stage->delay_frames = from->delay_frames + stage->delay_frames * from->factor;
+    }
+    return STATUS_OK;
+}
+
+/* Puts the stages in order of their factors. */
+static void sort_stages(struct pulses *pulses)
+{
+    for (uint32_t s = 1; s < pulses->n_stages; s++)
+        for (uint32_t t = s; t > 0 && pulses->stages[t - 1].factor > pulses->stages[t].factor; t--) {
+            struct stage swap = pulses->stages[t];
+            pulses->stages[t] = pulses->stages[t - 1];
+            pulses->stages[t - 1] = swap;
+            for (uint32_t e = 0; e < pulses->n_ears; e++) {
+                uint32_t *stage = &pulses->ears[e].stage;
+                *stage = *stage == t ? t - 1 : *stage == t - 1 ? t : *stage;
+            }
+        }
+}
+
 static enum status create_stage(struct pulses *pulses, uint32_t index)
 {
     struct stage *stage = &pulses->stages[index];
@@ -151,9 +191,10 @@ static enum status create_stage(struct pulses *pulses, uint32_t index)
         return STATUS_NO_MEMORY;
     enum status status = bands_create(stage->rate_hz, stage->edges, stage->n_edges, stage->slot_frames,
                                       stage->block_slots, stage->history_slots, &stage->bands);
-    if (status == STATUS_OK && stage->factor > 1)
-        status = decimator_create(stage->factor, &stage->decimator);
-    return status;
+    if (status != STATUS_OK || stage->factor == 1)
+        return status;
+    stage->decimated = calloc(PIECE_FRAMES + 1, sizeof *stage->decimated);
+    return stage->decimated ? create_decimator(pulses, stage) : STATUS_NO_MEMORY;
 }
 
 static double noise_rate_of(const void *context, double snr)
@@ -174,7 +215,7 @@ static enum status create_ear(struct pulses *pulses, struct ear *ear)
         .block_slots = stage->block_slots,
         .history_slots = stage->history_slots,
         .frames_per_frame = stage->factor,
-        .delay_frames = stage->decimator ? decimator_get_delay(stage->decimator) : 0,
+        .delay_frames = stage->delay_frames,
     };
     enum status status = trigger_create(&setup, &ear->trigger);
     if (status != STATUS_OK)
@@ -198,6 +239,7 @@ enum status pulses_create(const struct call_class *classes, uint32_t n_classes, 
     for (uint32_t c = 0; c < n_classes && status == STATUS_OK; c++)
         if (is_hearable(&classes[c], rate_hz))
             status = add_ear(pulses, &classes[c], c);
+    sort_stages(pulses);
     for (uint32_t s = 0; s < pulses->n_stages && status == STATUS_OK; s++)
         status = create_stage(pulses, s);
     for (uint32_t e = 0; e < pulses->n_ears && status == STATUS_OK; e++)
@@ -330,13 +372,17 @@ void pulses_push(struct pulses *pulses, const float *pascals, uint32_t n, const 
     pulses->sink = sink;
     for (uint32_t done = 0; done < n; done += PIECE_FRAMES) {
         uint32_t part = n - done < PIECE_FRAMES ? n - done : PIECE_FRAMES;
+        size_t n_decimated[MAX_STAGES];
         for (uint32_t s = 0; s < pulses->n_stages; s++) {
             struct stage *stage = &pulses->stages[s];
-            if (!stage->decimator)
+            if (!stage->decimator) {
                 fill(pulses, s, pascals + done, part);
-            else
-                fill(pulses, s, pulses->decimated,
-                     decimator_push(stage->decimator, pascals + done, part, pulses->decimated));
+                continue;
+            }
+            const struct stage *from = stage->from == NOWHERE ? NULL : &pulses->stages[stage->from];
+            n_decimated[s] = decimator_push(stage->decimator, from ? from->decimated : pascals + done,
+                                            from ? n_decimated[stage->from] : part, stage->decimated);
+            fill(pulses, s, stage->decimated, n_decimated[s]);
         }
     }
 }
@@ -402,6 +448,7 @@ void pulses_destroy(struct pulses *pulses)
     for (uint32_t s = 0; s < pulses->n_stages; s++) {
         bands_destroy(pulses->stages[s].bands);
         decimator_destroy(pulses->stages[s].decimator);
+        free(pulses->stages[s].decimated);
         free(pulses->stages[s].block);
     }
     free(pulses);

@@ -11,6 +11,7 @@
 #define FADING 0.9        /* of a count, with each pulse of a train */
 #define MOST_EVIDENCE 8.0 /* so much ill-fitting is forgiven a train that has long fitted well, nats */
 #define PIECE_S 10.0
+#define PIECE_INTERVALS 4 /* longest ones, where that lasts longer */
 #define PIECE_PULSES 200
 #define MIN_PIECE 3
 enum status trains_create(const struct call_class *call_class, double rate_hz, struct noise_rate noise,
@@ -211,7 +212,8 @@ static void lengthen(struct trains *trains, struct open_train *open, uint32_t li
     open->last = number;
     open->last_link = link;
     claim(trains, open);
-    if (node->time_s - open->given_time_s >= PIECE_S || number - open->given >= PIECE_PULSES)
+    double piece_s = fmax(PIECE_S, PIECE_INTERVALS * trains->call_class.train.max_interval_s);
+    if (node->time_s - open->given_time_s >= piece_s || number - open->given >= PIECE_PULSES)
         give(trains, open, sink, rejections);
 }
 

@@ -13,9 +13,9 @@
  * strong pulses, which noise seldom gives, need fewer of them.
  *
  * How a long train is given: first as soon as it is certain (at least min_pulses), then again, as a call of
- * its own that begins with the pulse after the last one given, at most every 10 s (or 200 pulses), and at its
- * end (once 3.3 intervals have passed without a pulse) if at least 3 pulses are new. So a sperm whale that
- * clicks for an hour is a call each 10 s.
+ * its own that begins with the pulse after the last one given, at most every 10 s or 4 longest intervals (or
+ * 200 pulses), and at its end (once 3.3 intervals have passed without a pulse) if at least 3 pulses are new.
+ * So a sperm whale that clicks for an hour is a call each 10 s.
  *
  * A rhythm steadier than min_jitter is a machine's: such a train is held until it has 10 pulses, then counted
  * under that name and given as a machine's (train.machine), and its pulses with it. */
