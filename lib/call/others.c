@@ -139,5 +139,5 @@ bool others_can_hear(const struct others *others, uint32_t class_index)
     double high = fmin(class->high_hz, CARRIED * others->setup.rate_hz);
     bool needs_pair = manner == MANNER_PICK_UP || manner == MANNER_FLOW;
     return manner >= MANNER_BURST && manner <= MANNER_SNAPS && (others->setup.pair || !needs_pair) &&
-           high - class->low_hz >= 0.5 * (class->high_hz - class->low_hz);
+           high > class->low_hz && log(high / class->low_hz) >= 0.5 * log(class->high_hz / class->low_hz);
 }

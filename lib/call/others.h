@@ -34,7 +34,7 @@ void others_push(struct others *others, const float *first, const float *second,
                  const struct found_sink *sink);
 /* Ends what is open. */
 void others_finish(struct others *others, const struct found_sink *sink);
-/* Whether the rate carries half of the class's band and its manner is one of those above, with the channels
+/* Whether the rate carries half of the octaves of the class's band and its manner is one of those above, with the channels
  * that it needs. */
 bool others_can_hear(const struct others *others, uint32_t class_index);
 void others_destroy(struct others *others);
