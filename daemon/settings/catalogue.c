@@ -32,7 +32,7 @@ static void read_tone(struct group_reader *group, struct tone_shape *tone)
     tone->max_extent_hz = FREE_SWEEP_HZ;
     tone->min_sweep_hz = -FREE_SWEEP_HZ;
     tone->max_sweep_hz = FREE_SWEEP_HZ;
-    group_number(group, "window_s", READER_REQUIRED, 0.002, 2, &tone->window_s);
+    group_number(group, "window_s", READER_REQUIRED, 0.002, 8, &tone->window_s);
     group_number(group, "min_snr_db", READER_REQUIRED, 0, 60, &tone->min_snr_db);
     group_number(group, "min_s", READER_REQUIRED, 0.02, 60, &tone->min_s);
     group_number(group, "max_s", READER_REQUIRED, 0.05, 600, &tone->max_s);
@@ -40,10 +40,23 @@ static void read_tone(struct group_reader *group, struct tone_shape *tone)
     group_number(group, "max_extent_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->max_extent_hz);
     group_number(group, "min_sweep_hz", READER_OPTIONAL, -FREE_SWEEP_HZ, FREE_SWEEP_HZ, &tone->min_sweep_hz);
     group_number(group, "max_sweep_hz", READER_OPTIONAL, -FREE_SWEEP_HZ, FREE_SWEEP_HZ, &tone->max_sweep_hz);
-    group_number(group, "max_rate_hz_s", READER_REQUIRED, 1, FREE_SWEEP_HZ, &tone->max_rate_hz_s);
+    group_number(group, "max_rate_hz_s", READER_REQUIRED, 0.01, FREE_SWEEP_HZ, &tone->max_rate_hz_s);
+    group_number(group, "min_sideband_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->min_sideband_hz);
+    group_number(group, "max_sideband_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->max_sideband_hz);
+    if (tone->max_sideband_hz != 0)
+        check_order(group, tone->min_sideband_hz, tone->max_sideband_hz, "min_sideband_hz",
+                    "max_sideband_hz");
     check_order(group, tone->min_s, tone->max_s, "min_s", "max_s");
     check_order(group, tone->min_extent_hz, tone->max_extent_hz, "min_extent_hz", "max_extent_hz");
     check_order(group, tone->min_sweep_hz, tone->max_sweep_hz, "min_sweep_hz", "max_sweep_hz");
+    group_number(group, "min_bend_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->min_bend_hz);
+    group_number(group, "max_bend_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->max_bend_hz);
+    group_number(group, "min_jump_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->min_jump_hz);
+    group_number(group, "max_jump_hz", READER_OPTIONAL, 0, FREE_SWEEP_HZ, &tone->max_jump_hz);
+    if (tone->max_bend_hz != 0)
+        check_order(group, tone->min_bend_hz, tone->max_bend_hz, "min_bend_hz", "max_bend_hz");
+    if (tone->max_jump_hz != 0)
+        check_order(group, tone->min_jump_hz, tone->max_jump_hz, "min_jump_hz", "max_jump_hz");
     if (tone->min_sweep_hz <= -FREE_SWEEP_HZ)
         tone->min_sweep_hz = -INFINITY;
     if (tone->max_sweep_hz >= FREE_SWEEP_HZ)

@@ -20,6 +20,13 @@ struct tone_shape {
     double min_sweep_hz; /* end less start; negative for a fall; -INFINITY where free */
     double max_sweep_hz;
     double max_rate_hz_s; /* steepest change that the tracer follows */
+    /* Distance of lines that must run beside it, above and below: sidebands of what is pulsed, harmonics of a
+     * pulse rate. 0 where free. */
+    double min_sideband_hz, max_sideband_hz;
+    /* Rms departure from a straight line: machines keep their frequency, or sweep at a constant rate; and
+     * mean jump from frame to frame against the slope: modems hop. 0 where free. */
+    double min_bend_hz, max_bend_hz;
+    double min_jump_hz, max_jump_hz;
 };
 
 /* What pulses and their rhythm must be like. */

@@ -70,7 +70,9 @@ static double allowance_of(const struct call_class *class)
 {
     const struct tone_shape *tone = &class->tone;
     double free_sweep = isinf(tone->min_sweep_hz) + isinf(tone->max_sweep_hz);
-    return log2(class->high_hz / class->low_hz) * log2(tone->max_s / tone->min_s) * (1 + free_sweep) / 3;
+    double free_beside = tone->max_sideband_hz > 0 ? 0.25 : 1;
+    return log2(class->high_hz / class->low_hz) * log2(tone->max_s / tone->min_s) * (1 + free_sweep) / 3 *
+           free_beside;
 }
 
 /* The widest bounds of the tone classes that share a window; their thresholds follow from the cells. */

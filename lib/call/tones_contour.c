@@ -4,7 +4,11 @@
 #include <stddef.h>
 
 #define START_SHARE 0.03 /* of a path's mean power: 15 dB */
-#define FLANK 2          /* bins beside a tone's that hold its power (Hann) */
+#define FLAT_SHARE 0.05  /* of its frequency, or FLAT_BINS: what is flat within FLAT_S */
+#define FLAT_BINS 3
+#define FLAT_S 5.0
+#define MOST_JUMP 4 /* bins that one jump counts: a whistle's few steps are no hopping */
+#define FLANK 2     /* bins beside a tone's that hold its power (Hann) */
 
 static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
 {
@@ -122,6 +126,28 @@ static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n
     out->fall_db_s = spread > 0 ? -(n * stl - st * sl) / spread : 0;
 }
 
+/* How far the course is from a straight line, and how it jumps. */
+static void measure_smoothness(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+{
+    double sx = 0, sy = 0, sxx = 0, sxy = 0, syy = 0, jumps = 0, before[2] = {0, 0};
+    for (uint32_t i = 0; i < n; i++) {
+        double hz = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        double x = i - (n - 1) / 2.0, y = hz - tracer->first_bin * tracer->bin_hz, second;
+        sx += x;
+        sy += y;
+        sxx += x * x;
+        sxy += x * y;
+        syy += y * y;
+        second = hz - 2 * before[0] + before[1];
+        jumps += i >= 2 ? fmin(fabs(second), MOST_JUMP * tracer->bin_hz) : 0;
+        before[1] = before[0];
+        before[0] = hz;
+    }
+    double spread = sxx - sx * sx / n, slope = spread > 0 ? (sxy - sx * sy / n) / spread : 0;
+    out->bend_hz = sqrt(fmax(0, syy - sy * sy / n - slope * slope * spread) / n);
+    out->jump_hz = n > 2 ? jumps / (n - 2) : 0;
+}
+
 static void measure_shape(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
 {
     double low = INFINITY, high = 0, ends[2] = {0, 0};
@@ -135,7 +161,8 @@ static void measure_shape(const struct tracer *tracer, uint64_t last, uint32_t n
     }
     for (uint32_t p = 0; p < TRACE_POINTS; p++) {
         uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
-        out->hz[p] = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        out->hz[p] =
+            (float)refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
     }
     out->low_hz = low;
     out->high_hz = high;
@@ -153,10 +180,29 @@ static void measure_course(const struct tracer *tracer, uint64_t last, uint32_t 
     out->low_hz = INFINITY;
     for (uint32_t p = 0; p < TRACE_POINTS; p++) {
         uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
-        out->hz[p] = (tracer->first_bin + tracer->trail[i]) * tracer->bin_hz;
+        out->hz[p] = (float)((tracer->first_bin + tracer->trail[i]) * tracer->bin_hz);
         out->low_hz = fmin(out->low_hz, out->hz[p]);
         out->high_hz = fmax(out->high_hz, out->hz[p]);
     }
+}
+
+/* Power of the cell in which the path ended, over the frames since then, as a share of that along it. */
+static double measure_remains(const struct tracer *tracer, uint64_t last, uint32_t n)
+{
+    double along = 0, after = 0;
+    for (uint32_t i = 0; i < n; i++)
+        along += cell_power(tracer, last, i) / n;
+    for (uint64_t frame = last + 1; frame <= tracer->newest; frame++)
+        after += (double)row_of(tracer->history_power, tracer, frame)[tracer->trail[0]];
+    return along > 0 && tracer->newest > last ? after / (double)(tracer->newest - last) / along : 0;
+}
+
+bool contour_is_flat(const struct contour *contour)
+{
+    const double high = contour->high_hz, extent = high - contour->low_hz;
+    const double flat_hz =
+        fmax(FLAT_BINS * contour->bin_hz, high * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
+    return extent <= flat_hz || (fabs(contour->sweep_hz) <= flat_hz && contour->bend_hz <= 2 * contour->bin_hz);
 }
 
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
@@ -166,9 +212,13 @@ void contour_trace(struct tracer *tracer, const struct path *path, bool whole, s
     *out = (struct contour){.n_cells = n, .score = path->best, .bin_hz = tracer->bin_hz};
     out->start_frame = tracer->centre[tracer_row(tracer, last - (n - 1))] - tracer->hop / 2;
     out->end_frame = tracer->centre[tracer_row(tracer, last)] + tracer->hop / 2;
+    out->seconds = (out->end_frame - out->start_frame) / tracer->setup.rate_hz;
     if (whole) {
+        out->remains = measure_remains(tracer, last, n);
+        out->sideband_hz = contour_sideband_hz(tracer, last, n);
         measure_cells(tracer, last, n, out);
         measure_shape(tracer, last, n, out);
+        measure_smoothness(tracer, last, n, out);
     } else
         measure_course(tracer, last, n, out);
 }

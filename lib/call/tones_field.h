@@ -14,7 +14,10 @@
 #define FLANK_GAIN (-1.5F) /* of a cell that is only the tail of its path, or the flank of a louder one */
 #define TAIL_SHARE 0.063F  /* 12 dB */
 #define TAIL_FALL_DB_S 6.0
-#define SMOOTHING 0.33F /* of power, a frame */
+#define SMOOTHING 0.33F /* of power, a frame ... */
+#define GROWTH                                                                                               \
+    4.0F /* ... of which at most so much more than before counts: a ping that splatters over a call          \
+            must not make the rest of it a tail */
 
 #define MAX_PATHS 48
 #define NO_PATH (-1)
@@ -61,7 +64,8 @@ struct tracer {
     float *power_store,
         *power; /* power[n / 2 + 1] in the middle of a store with margins of TILE and 2 * TILE */
 
-    uint64_t frame;                           /* number of the newest frame plus 1 */
+    uint64_t frame;                           /* that is being worked on, or the next */
+    uint64_t newest;                          /* whose power is in the history */
     float *level, *smooth, *occupancy, *gain; /* [stride] */
     float *smooth_snr, *floor; /* [stride], over the background: a shot's frame is its own background */
     float *tail;               /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
@@ -87,5 +91,8 @@ void paths_advance(struct tracer *tracer, const struct trace_sink *sink);
 void paths_end(struct tracer *tracer, const struct trace_sink *sink);
 /* tones_contour.c: traces an open path back to its start; without `whole` only times, course and level. */
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out);
+/* tones_sidebands.c: distance of the lines beside the n cells of the trail that ends at frame `last`, or 0.
+ */
+double contour_sideband_hz(const struct tracer *tracer, uint64_t last, uint32_t n);
 
 #endif

@@ -1,119 +1,47 @@
 /* From contours to calls; see tones_judge.h. */
 #include "call/tones_judge.h"
+#include "call/tones_related.h"
 #include <math.h>
 #include <string.h>
 
 #define MIN_CONTRAST 2.0   /* 3 dB over the cells beside it: less is a patch of noise */
 #define LINE_OCCUPANCY 0.5 /* of the last half minute: a tone that is nearly always there */
-#define FLAT_SHARE 0.05    /* of its frequency, or FLAT_BINS: what is flat */
-#define FLAT_BINS 3
-#define TAIL_REACH_S 5.0 /* a tail begins at most so long after its sound ended ... */
-#define TAIL_WEAKER 0.1  /* ... with at most this share of its mean square */
+#define TAIL_REACH_S 5.0   /* a tail begins at most so long after its sound ended ... */
+#define TAIL_WEAKER 0.1    /* ... with at most this share of its mean square */
 #define TAIL_FALL_DB_S 1.5
-#define CONTAINED 0.8 /* share of the shorter that lies within the other: overlaps nearly fully */
-#define HARMONIC_OVERLAP 0.6
-#define HARMONIC_ERROR 0.02
-#define MAX_HARMONIC 10
-#define MEMORY_S 12.0       /* how long a given sound still absorbs its pieces */
-#define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
-#define FAR_WEAKER 0.01
-#define ECHO_S 0.5
+#define CONTAINED 0.8     /* share of the shorter that lies within the other: overlaps nearly fully */
+#define MEMORY_S 12.0     /* how long a given sound still absorbs its pieces */
 #define LOOK_AGAIN_S 0.05 /* after a sound was held for an open contour */
 #define NEARLY_BEST 0.5   /* classes with so much of the most points are equals */
 
-static double duration(const struct contour *c)
-{
-    return c->end_frame - c->start_frame;
-}
-
-static double overlap(const struct contour *a, const struct contour *b)
-{
-    return fmin(a->end_frame, b->end_frame) - fmax(a->start_frame, b->start_frame);
-}
-
-static double hz_at(const struct contour *c, double frame)
-{
-    double x = (frame - c->start_frame) / duration(c) * (TRACE_POINTS - 1);
-    x = fmin(fmax(x, 0), TRACE_POINTS - 1.0);
-    uint32_t i = (uint32_t)fmin(x, TRACE_POINTS - 2.0);
-    return c->hz[i] + (x - i) * (c->hz[i + 1] - c->hz[i]);
-}
-
-/* Share of the common time in which the frequencies stand as i to j, within the tolerance. */
-static double share_in_ratio(const struct contour *a, const struct contour *b, double ratio, double error,
-                             double tolerance_hz)
-{
-    double start = fmax(a->start_frame, b->start_frame), length = overlap(a, b);
-    uint32_t good = 0;
-    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
-        double frame = start + length * (i + 0.5) / TRACE_POINTS;
-        double wanted = ratio * hz_at(b, frame);
-        good += fabs(hz_at(a, frame) - wanted) < error * wanted + tolerance_hz;
-    }
-    return good / (double)TRACE_POINTS;
-}
-
-/* A harmonic of the other: a whole multiple of its frequency for most of their common time. */
-static bool is_harmonic(const struct contour *a, const struct contour *b)
-{
-    const struct contour *high = a->hz[TRACE_POINTS / 2] > b->hz[TRACE_POINTS / 2] ? a : b;
-    const struct contour *low = high == a ? b : a;
-    double middle = fmax(a->start_frame, b->start_frame) + overlap(a, b) / 2;
-    double ratio = round(hz_at(high, middle) / hz_at(low, middle));
-    if (ratio < 2 || ratio > MAX_HARMONIC)
-        return false;
-    return share_in_ratio(high, low, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= 0.7;
-}
-
-/* Weaker than the other, above it, and mostly within its time, or far weaker and begun within it or just
- * after: an overtone, its distortion or its echo, though no multiple can be told (at the tenth harmonic any
- * frequency is near one). */
-static bool is_overtone(const struct judge *judge, const struct contour *weak, const struct contour *strong)
-{
-    if (weak->low_hz <= strong->high_hz || weak->mean_square >= OVERTONE_WEAKER * strong->mean_square)
-        return false;
-    bool within = overlap(weak, strong) >= HARMONIC_OVERLAP * duration(weak);
-    bool begun = weak->start_frame >= strong->start_frame &&
-                 weak->start_frame < strong->end_frame + ECHO_S / 2 * judge->rate_hz &&
-                 weak->end_frame < strong->end_frame + ECHO_S * judge->rate_hz;
-    return within || (begun && weak->mean_square < FAR_WEAKER * strong->mean_square);
-}
-
-static uint32_t first_class(const struct judge *judge, uint32_t tracer)
+/* The first class that the tracer traces. */
+static const struct call_class *class_of(const struct judge *judge, uint32_t tracer)
 {
     uint32_t c = 0;
     while (c + 1 < judge->n_classes && judge->classes[c].tracer != tracer)
         c++;
-    return c;
+    return judge->classes[c].class;
 }
 
 bool judge_is_same_sound(const struct judge *judge, const struct contour *a, const struct contour *b)
 {
-    double common = overlap(a, b), shorter = fmin(duration(a), duration(b));
-    if (is_overtone(judge, a, b) || is_overtone(judge, b, a))
+    double common = related_overlap(a, b), length[2] = {related_duration(a), related_duration(b)};
+    if (related_is_overtone(judge->rate_hz, a, b) || related_is_overtone(judge->rate_hz, b, a))
         return true;
     if (common <= 0)
         return false;
-    if (common >= 0.3 * shorter && share_in_ratio(a, b, 1, 0, 2.5 * fmax(a->bin_hz, b->bin_hz)) >= 0.7)
+    if (related_is_same_line(a, b) || related_is_harmonic(a, b))
         return true;
-    if (common >= HARMONIC_OVERLAP * shorter && is_harmonic(a, b))
-        return true;
-    enum group group_a = judge->classes[first_class(judge, a->tracer)].class->group;
-    enum group group_b = judge->classes[first_class(judge, b->tracer)].class->group;
-    if (group_a == group_b)
-        return common >= CONTAINED * shorter;
-    return common >= CONTAINED * fmax(duration(a), duration(b));
-}
-
-static bool is_flat(const struct contour *c)
-{
-    return c->high_hz - c->low_hz <= fmax(FLAT_BINS * c->bin_hz, FLAT_SHARE * c->high_hz);
+    bool same_group = class_of(judge, a->tracer)->group == class_of(judge, b->tracer)->group;
+    if ((a->tracer == b->tracer || !same_group) && related_is_apart(a, b))
+        return false; /* another window of the group sees the same sound otherwise */
+    return common >= CONTAINED * (same_group ? fmin(length[0], length[1]) : fmax(length[0], length[1]));
 }
 
 /* A flat contour that dies away where a much stronger sound has just been. */
 static bool is_tail(const struct judge *judge, const struct contour *c)
 {
-    if (!is_flat(c) || c->fall_db_s < TAIL_FALL_DB_S)
+    if (!contour_is_flat(c) || c->fall_db_s < TAIL_FALL_DB_S)
         return false;
     double middle = c->hz[TRACE_POINTS / 2];
     for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
@@ -132,11 +60,17 @@ static enum rejection reject_contour(const struct judge *judge, enum trace_end e
 {
     if (end == TRACE_TOO_MANY)
         return REJECT_TOO_MANY;
-    if (end == TRACE_STEADY_LINE || (is_flat(c) && c->occupancy > LINE_OCCUPANCY))
+    if (end == TRACE_STEADY_LINE || (contour_is_flat(c) && c->occupancy > LINE_OCCUPANCY))
         return REJECT_STEADY_LINE;
     if (c->contrast < MIN_CONTRAST)
         return REJECT_BROADBAND;
     return is_tail(judge, c) ? REJECT_REVERBERATION : REJECT_COUNT;
+}
+
+/* 0 as the highest: free. */
+static bool lies_within(double x, double low, double high)
+{
+    return x >= low && (high <= 0 || x <= high);
 }
 
 /* Why the contour is no call of this class, or REJECT_COUNT when it is one. */
@@ -145,7 +79,7 @@ static enum rejection reject_for_class(const struct judge *judge, const struct j
 {
     const struct call_class *class = judged->class;
     const struct tone_shape *tone = &class->tone;
-    double seconds = duration(c) / judge->rate_hz, extent = c->high_hz - c->low_hz;
+    double seconds = related_duration(c) / judge->rate_hz, extent = c->high_hz - c->low_hz;
     uint32_t inside = 0;
     for (uint32_t i = 0; i < TRACE_POINTS; i++)
         inside += c->hz[i] >= class->low_hz && c->hz[i] <= class->high_hz;
@@ -155,7 +89,10 @@ static enum rejection reject_for_class(const struct judge *judge, const struct j
         return REJECT_TOO_SHORT;
     if (seconds > tone->max_s)
         return REJECT_TOO_LONG;
-    bool good = inside >= 0.8 * TRACE_POINTS && extent >= tone->min_extent_hz &&
+    bool good = lies_within(c->bend_hz, tone->min_bend_hz, tone->max_bend_hz) &&
+                lies_within(c->jump_hz, tone->min_jump_hz, tone->max_jump_hz) &&
+                lies_within(c->sideband_hz, tone->min_sideband_hz, tone->max_sideband_hz) &&
+                inside >= 0.8 * TRACE_POINTS && extent >= tone->min_extent_hz &&
                 extent <= tone->max_extent_hz && c->sweep_hz >= tone->min_sweep_hz &&
                 c->sweep_hz <= tone->max_sweep_hz;
     return good ? REJECT_COUNT : REJECT_SHAPE;
@@ -164,12 +101,12 @@ static enum rejection reject_for_class(const struct judge *judge, const struct j
 /* Its energy: the strongest contours say what a sound is. */
 static double weight_of(const struct contour *c)
 {
-    return duration(c) * c->mean_square;
+    return related_duration(c) * c->mean_square;
 }
 
 static void add_member(struct sound *sound, const struct contour *c)
 {
-    double length = duration(c);
+    double length = related_duration(c);
     bool first = sound->n_members == 0;
     sound->start_frame = first ? c->start_frame : fmin(sound->start_frame, c->start_frame);
     sound->end_frame = first ? c->end_frame : fmax(sound->end_frame, c->end_frame);
@@ -226,7 +163,7 @@ static void prolong(struct judge *judge, const struct contour *c)
 static bool is_piece(const struct sound *given, const struct contour *c)
 {
     double common = fmin(given->end_frame, c->end_frame) - fmax(given->start_frame, c->start_frame);
-    return common >= CONTAINED * duration(c) && c->mean_square < given->strongest;
+    return common >= CONTAINED * related_duration(c) && c->mean_square < given->strongest;
 }
 
 /* The sound that the contour belongs to, a new one, or NULL when it belongs to one that is given already or
@@ -323,6 +260,7 @@ static void give(const struct judge *judge, struct sound *sound, uint64_t known_
                  const struct found_sink *sink)
 {
     double energy = 0;
+    sound->end_frame = fmax(sound->end_frame, sound->open_end_frame);
     for (uint32_t i = 0; i < CATALOGUE_MAX_CLASSES; i++)
         energy = fmax(energy, sound->energy[i]);
     struct found_call found = {.class_index = best_class(judge, sound),
@@ -339,18 +277,25 @@ static void give(const struct judge *judge, struct sound *sound, uint64_t known_
 
 enum openness { CLOSED, GOES_ON, OVERTONE_OF_OPEN };
 
-static enum openness look_at_open(const struct judge *judge, const struct sound *sound,
+/* A sound that goes on lasts as long as what is open of it. What is open and known as soon may name it. */
+static enum openness look_at_open(const struct judge *judge, struct sound *sound, double frame,
                                   const struct contour *open, uint32_t n_open)
 {
     enum openness openness = CLOSED;
+    const double delay_s = judge->classes[best_class(judge, sound)].class->natural_delay_s;
     for (uint32_t i = 0; i < n_open; i++) {
+        if (frame >= open[i].end_frame + delay_s * judge->rate_hz)
+            continue; /* no longer than the class has */
         bool overtone = true;
         for (uint32_t m = 0; m < sound->n_members; m++)
-            overtone = overtone && is_overtone(judge, &sound->members[m], &open[i]);
+            overtone = overtone && related_is_overtone(judge->rate_hz, &sound->members[m], &open[i]);
         if (overtone)
             return OVERTONE_OF_OPEN;
-        if (open[i].end_frame > sound->end_frame && belongs(judge, sound, &open[i]))
+        bool waits = class_of(judge, open[i].tracer)->natural_delay_s <= delay_s;
+        if ((waits || open[i].end_frame > sound->end_frame) && belongs(judge, sound, &open[i])) {
+            sound->open_end_frame = fmax(sound->open_end_frame, open[i].end_frame);
             openness = GOES_ON;
+        }
     }
     return openness;
 }
@@ -365,7 +310,7 @@ static void choose(struct judge *judge, uint64_t known_frame, bool all, const st
         ready[i] = all ? sound->used && !sound->given : is_due(judge, sound, (double)known_frame + 1);
         if (!ready[i] || all)
             continue;
-        enum openness openness = look_at_open(judge, sound, open, n_open);
+        enum openness openness = look_at_open(judge, sound, (double)known_frame + 1, open, n_open);
         ready[i] = openness == CLOSED;
         if (openness == GOES_ON)
             judge->look_again = (double)known_frame + LOOK_AGAIN_S * judge->rate_hz;

@@ -23,6 +23,7 @@ struct judged_class {
 struct sound {
     bool used, given;
     double start_frame, end_frame, low_hz, high_hz;
+    double open_end_frame;                /* of what was open of it when it was looked at */
     double snr_weight, weight, strongest; /* sums over its contours; the largest mean square */
     double energy[CATALOGUE_MAX_CLASSES]; /* by tracer: each hears all of the sound */
     double points[CATALOGUE_MAX_CLASSES];

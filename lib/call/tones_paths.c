@@ -9,8 +9,10 @@
 #define STEP_COST 0.45F
 #define STEP_COST_BIN 1.2F
 #define STEP_COST_MOST 3.6F
-#define GAP_COST 12.0F   /* fall of the score that ends a path: a gap of about 8 frames */
-#define SLOPE_GAIN 0.35F /* how fast the slope follows */
+#define GAP_COST 12.0F    /* fall of the score that ends a path: a gap of about 8 frames */
+#define PIECE_SWEEPS 0.03 /* of its frequency: what is too long for a call, and yet no line */
+#define REMAINS 0.5       /* of its power after its end: it has not ended */
+#define SLOPE_GAIN 0.35F  /* how fast the slope follows */
 
 typedef int8_t tile_bytes __attribute__((vector_size(TILE)));
 
@@ -53,7 +55,8 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr
     const uint32_t from = (uint32_t)((int)at - step);
     const float peak = before->peak[from] * tracer->tail_fall;
     now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
-    now->level[at] = before->level[from] + SMOOTHING * (snr - before->level[from]);
+    const float most = GROWTH * before->level[from];
+    now->level[at] = before->level[from] + SMOOTHING * ((snr < most ? snr : most) - before->level[from]);
     now->peak[at] = now->level[at] > peak ? now->level[at] : peak;
     now->path[at] = before->path[from];
     now->first[at] = before->first[from];
@@ -153,6 +156,12 @@ static void end_path(struct tracer *tracer, uint32_t i, enum trace_end end, cons
 {
     struct contour contour;
     contour_trace(tracer, &tracer->paths[i], true, &contour);
+    const bool flat = contour_is_flat(&contour);
+    const bool sweeps = fabs(contour.sweep_hz) > PIECE_SWEEPS * contour.high_hz;
+    if (end == TRACE_STEADY_LINE && sweeps && !flat)
+        end = TRACE_CONTOUR; /* a piece of what is too long */
+    if (flat && contour.remains > REMAINS)
+        end = TRACE_STEADY_LINE; /* the background has come up to it; the tone has not ended */
     if (end == TRACE_STEADY_LINE)
         learn_line(tracer, &contour);
     clear_path(tracer, i);
@@ -162,7 +171,7 @@ static void end_path(struct tracer *tracer, uint32_t i, enum trace_end end, cons
 static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
 {
     const float ceiling = (float)tracer->setup.ceiling;
-    const double max_frames = tracer->setup.max_s * tracer->frame_rate;
+    const double max_frames = tracer->setup.max_s * tracer->frame_rate - 2;
     for (uint32_t i = 0; i < MAX_PATHS; i++) {
         struct path *path = &tracer->paths[i];
         if (!path->open)

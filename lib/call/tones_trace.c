@@ -14,7 +14,9 @@
  * scale is so many times that of the rest (20 dB). Both are own choices. */
 #define TRANSIENT_SHARE 0.01
 #define TRANSIENT_SCALE 10.0
-#define EXP_POWER 8.0F /* exp(u) is taken as (1 + u / 8)^8 */
+#define MOST_RISE_DB_S 0.5 /* of the background, by a call ... */
+#define MOST_RISE_DB 3.0   /* ... and by the longest one in all */
+#define EXP_POWER 8.0F     /* exp(u) is taken as (1 + u / 8)^8 */
 
 /* The even number with no prime above 5 that is nearest to x. */
 static uint32_t fast_length(double x)
@@ -111,6 +113,8 @@ enum status tracer_create(const struct tracer_setup *setup, struct tracer **out)
         status = spectrum_create(tracer->n, WINDOW_HANN, &tracer->spectrum);
     if (status == STATUS_OK)
         status = background_create(tracer->n_bins, tracer->frame_rate, &tracer->background);
+    if (status == STATUS_OK)
+        background_set_rise(tracer->background, fmin(MOST_RISE_DB_S, MOST_RISE_DB / setup->max_s));
     if (status == STATUS_OK && !make_arrays(tracer))
         status = STATUS_NO_MEMORY;
     /* A contour ends half a hop after its last frame's middle; that frame is complete half a window after its
@@ -235,6 +239,7 @@ static void take_frame(struct tracer *tracer, const struct trace_sink *sink)
     memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
     double samples = (double)tracer->n_shifted + (tracer->n - 1) / 2.0;
     tracer->centre[row] = (double)tracer->origin + samples * tracer->setup.factor - tracer->setup.late_frames;
+    tracer->newest = tracer->frame;
     bool ready = background_is_ready(tracer->background);
     background_push(tracer->background, power, tracer->level);
     weigh_cells(tracer);

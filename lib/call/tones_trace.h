@@ -14,19 +14,24 @@
 #include <stdbool.h>
 #include <stdint.h>
 
-#define TRACE_POINTS 48
+#define TRACE_POINTS 192
 
 struct contour {
     double start_frame, end_frame; /* input frames */
-    double hz[TRACE_POINTS];       /* along it, evenly from start to end */
+    float hz[TRACE_POINTS];        /* along it, evenly from start to end */
     double low_hz, high_hz, sweep_hz;
     double snr;         /* mean of cell power over background */
     double contrast;    /* mean of cell power over that of the cells beside it: 1 is as broad as the band */
     double occupancy;   /* share of the last half minute in which its cells were full */
     double fall_db_s;   /* how fast its level falls */
+    double remains;     /* power where it ended, from then until it was given up, over that along it */
+    double sideband_hz; /* distance of the nearest lines that run beside it, above and below; 0: none */
     double mean_square; /* Pa2, of the cells along it */
     double score;
     double bin_hz;
+    double bend_hz; /* rms departure from a straight line: little for what sweeps at a constant rate */
+    double jump_hz; /* mean size of the second difference from frame to frame: much for what hops */
+    double seconds;
     uint32_t n_cells; /* frames it was traced over */
     uint32_t tracer;  /* filled by the owner */
 };
@@ -46,11 +51,15 @@ struct tracer_setup {
     double low_hz;        /* band that is traced */
     double high_hz;       /* at most half of the decimated rate */
     double max_rate_hz_s; /* steepest change that is followed */
-    double max_s;         /* longest contour; a longer one is a steady line */
+    double max_s;         /* longest contour; a longer one is a steady line, or ends as a piece */
     double delay_s;       /* from the end of a contour to the input frame at which it must be known */
     double threshold;     /* score from which a path is a contour */
     double ceiling;       /* that a score does not exceed */
 };
+
+/* Whether a contour (traced whole) stays where it is, but for single cells: a machine's line drifts by less
+ * than 1 % in 10 s, a short one cannot be told so finely. */
+bool contour_is_flat(const struct contour *contour);
 
 struct tracer;
 

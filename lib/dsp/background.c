@@ -11,6 +11,7 @@
 #define RISE_DB_S 0.5            /* at which a bin that is always above goes up */
 #define FIRST_STEP_DB 6.0        /* of the first frames, then of the n-th a share that falls with n */
 #define READY_S 1.0
+#define READY_FRAMES 8
 #define LEAST 1e-30F          /* of a quantile: digital silence */
 #define RESTART_RATIO 10.0F   /* a rise of all that is heard, while learning, begins anew */
 #define BROADBAND_SPEED 4.0   /* of learning, while all of a stretch has risen */
@@ -61,6 +62,11 @@ enum status background_create(uint32_t n_bins, double frames_per_s, struct backg
     return STATUS_OK;
 }
 
+void background_set_rise(struct background *background, double rise_db_s)
+{
+    background->step_db = rise_db_s / (QUANTILE * background->frames_per_s);
+}
+
 void background_destroy(struct background *background)
 {
     if (!background)
@@ -73,7 +79,7 @@ void background_destroy(struct background *background)
 
 bool background_is_ready(const struct background *background)
 {
-    return (double)background->n_frames >= READY_S * background->frames_per_s;
+    return (double)background->n_frames >= fmax(READY_FRAMES, READY_S * background->frames_per_s);
 }
 
 void background_raise(struct background *background, uint32_t bin, float power)

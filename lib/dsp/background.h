@@ -23,12 +23,15 @@ struct background;
 /* STATUS_BAD_ARGUMENT for no bins or a rate that is not positive. */
 enum status background_create(uint32_t n_bins, double frames_per_s, struct background **out);
 void background_destroy(struct background *background);
+/* How fast a bin that is always above goes up, 0.5 dB/s where this is not called: slower for calls that last
+ * longer. Before the first push. */
+void background_set_rise(struct background *background, double rise_db_s);
 /* The mean power of each bin that is expected without a call in this frame, [n_bins], both ways; then learns
  * from the frame. */
 void background_push(struct background *background, const float *power, float *out_background);
 /* From the next frame on the tail of a known impulse is heard in bins [low, high) (`true`), or no more. */
 void background_set_tail(struct background *background, uint32_t low, uint32_t high, bool is_heard);
-/* Whether enough frames (1 s) were heard for the estimate to be trusted. */
+/* Whether enough frames (1 s, at least 8) were heard for the estimate to be trusted. */
 bool background_is_ready(const struct background *background);
 /* Takes `power` as the mean of this bin from now on, where it is more: a steady line was recognised. */
 void background_raise(struct background *background, uint32_t bin, float power);

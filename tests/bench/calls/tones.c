@@ -149,6 +149,7 @@ json_t *calls_tones(const struct calls_setup *setup)
     for (uint32_t c = 0; c < setup->catalogue->n_classes; c++) {
         const struct call_class *call_class = &setup->catalogue->classes[c];
         if (call_class->form == CALL_TONE && call_class->animal &&
+            call_class->tone.max_sideband_hz <= 0 && /* one contour is no comb */
             json_array_append_new(rows, measure(setup, call_class, c)) != 0)
             return NULL;
     }
