@@ -1,6 +1,7 @@
 /* All train classes of one channel. */
 #include "call/pulses.h"
 #include "call/bands.h"
+#include "call/hidden.h"
 #include "call/tied.h"
 #include "call/trigger.h"
 #include "dsp/decimate.h"
@@ -45,6 +46,7 @@ struct ear {
     uint32_t class_index, stage, band, guards[TRIGGER_GUARDS];
     struct trigger *trigger;
     struct tied tied;
+    struct hidden hidden;
     uint64_t rejections[REJECT_COUNT];
 };
 
@@ -266,6 +268,7 @@ void pulses_reset(struct pulses *pulses, uint64_t next_frame)
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         trigger_reset(pulses->ears[e].trigger);
         tied_reset(&pulses->ears[e].tied);
+        pulses->ears[e].hidden = (struct hidden){0};
     }
 }
 
@@ -323,7 +326,10 @@ static void take_pulse(void *context, const struct pulse *pulse)
 {
     struct hearing *hearing = context;
     struct train_sink sink = {take_train, hearing};
-    tied_push(&hearing->ear->tied, pulse, &sink, hearing->ear->rejections);
+    if (hidden_has(&hearing->ear->hidden, pulse->frame))
+        hearing->ear->rejections[REJECT_OWN_SOURCE]++;
+    else
+        tied_push(&hearing->ear->tied, pulse, &sink, hearing->ear->rejections);
 }
 
 static void search_block(struct pulses *pulses, uint32_t index, const float *block)
@@ -408,8 +414,10 @@ void pulses_hide(struct pulses *pulses, double start_frame, double end_frame, do
     double first = (double)pulses->first_frame;
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         struct ear *ear = &pulses->ears[e];
-        if (ear->call_class->low_hz < high_hz && ear->call_class->high_hz > low_hz)
-            tied_hide(&ear->tied, start_frame - first, end_frame - first, ear->rejections);
+        if (ear->call_class->low_hz >= high_hz || ear->call_class->high_hz <= low_hz)
+            continue;
+        hidden_add(&ear->hidden, start_frame - first, end_frame - first);
+        tied_hide(&ear->tied, start_frame - first, end_frame - first, ear->rejections);
     }
 }
 

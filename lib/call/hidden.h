@@ -1,0 +1,32 @@
+/* The last stretches of time in which the own source covers a class's band: a pulse may become known after
+ * the stretch that it lies in. Used by pulses.c only. */
+#ifndef CALL_HIDDEN_H
+#define CALL_HIDDEN_H
+
+#include <stdbool.h>
+#include <stdint.h>
+
+#define HIDDEN_REMEMBERED 16
+
+/* Plain data; zeros are none. */
+struct hidden {
+    uint32_t n; /* so far; rings */
+    double start[HIDDEN_REMEMBERED], end[HIDDEN_REMEMBERED];
+};
+
+static inline void hidden_add(struct hidden *hidden, double start, double end)
+{
+    uint32_t at = hidden->n++ % HIDDEN_REMEMBERED;
+    hidden->start[at] = start;
+    hidden->end[at] = end;
+}
+
+static inline bool hidden_has(const struct hidden *hidden, double frame)
+{
+    for (uint32_t i = 0; i < HIDDEN_REMEMBERED && i < hidden->n; i++)
+        if (frame >= hidden->start[i] && frame <= hidden->end[i])
+            return true;
+    return false;
+}
+
+#endif
