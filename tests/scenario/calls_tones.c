@@ -50,6 +50,11 @@ static void tones_are_found_near_the_ideal(void **state)
     json_array_foreach(json_object_get(result, "rows"), i, row)
     {
         const char *name = json_string_value(json_object_get(row, "class"));
+        if (!json_is_real(json_object_get(row, "loss_db")) && falls(name)) {
+            printf("# %s: the drawn contours do not have its shape; scenario/tones_classes has its calls\n",
+                   name);
+            continue;
+        }
         double loss_db = json_number_value(json_object_get(row, "loss_db"));
         int n = (int)json_integer_value(json_object_get(row, "trials"));
         int n_false = (int)json_integer_value(json_object_get(row, "noise_false"));
@@ -58,8 +63,6 @@ static void tones_are_found_near_the_ideal(void **state)
             "# figure %s, seed 20, %d calls a level: Pd 0.9 at a cell SNR of %.1f dB, %.1f dB above the sum "
             "along the true contour; %d false in %.1f h of noise\n",
             name, n, json_number_value(json_object_get(row, "pd90_db")), loss_db, n_false, hours);
-        if (!json_is_real(json_object_get(row, "loss_db")) && falls(name))
-            continue; /* the drawn contours do not have its shape; scenario/tones_classes has its calls */
         assert_true(json_is_real(json_object_get(row, "loss_db")));
         /* The crossing of a curve of n trials a level is known to about 2 / sqrt(n) dB. */
         double goal_db = strcmp(name, "right whale upcall") == 0  ? 4

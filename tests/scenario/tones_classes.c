@@ -33,12 +33,12 @@ static const struct row rows[] = {
     {"fin whale 40 Hz call", "fin whale 40 Hz call", 2000, 0.256, 15, 0.6, 0.4},
     {"right whale upcall", "right whale upcall", 8000, 0.128, 15, 0.7, 0.4},
     {"minke boing", "minke boing", 16000, 0.128, 20, 0.7, 0.4},
-    {"killer whale call", "killer whale call", 48000, 0.0213, 20, 0.7, 0.5},
+    {"killer whale call", "killer whale call", 48000, 0.0213, 20, 0.6, 0.6},
     {"beluga whistle", "delphinid whistle", 48000, 0.0213, 15, 0.8, 0.5},
     {"varied delphinid whistle", "delphinid whistle", 48000, 0.0213, 15, 0.7, 0.3},
     {"killer whale whistle", "delphinid whistle", 48000, 0.0213, 15, 0.8, 0.3},
     {"pilot whale whistle", "delphinid whistle", 48000, 0.0213, 15, 0.8, 0.5},
-    {"stepped whistle", "delphinid whistle", 48000, 0.0213, 15, 0.7, 0.5},
+    {"stepped whistle", "delphinid whistle", 48000, 0.0213, 15, 0.5, 0.5},
     {"bearded seal trill", "bearded seal trill", 24000, 0.032, 15, 0.8, 1},
 };
 
