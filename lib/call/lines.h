@@ -24,4 +24,9 @@ void lines_push(struct lines *lines, const struct other_frame *frame, const floa
                 const struct found_sink *sink);
 void lines_destroy(struct lines *lines);
 
+/* ---- for its own files only */
+
+#define LINES_SAME 0.02 /* power of the difference of two channels that are the same, over that of both */
+bool lines_same_on_both(const struct other_frame *frame, const float *second, double hz, double rate_hz);
+
 #endif

@@ -9,6 +9,7 @@
  *
  * usage: watch_cost [RATE_HZ CHANNELS [SECONDS]] */
 #include "base/time.h"
+#include "call/others.h"
 #include "float_mode.h"
 #include "listen/blocks.h"
 #include "listen/ear.h"
@@ -36,11 +37,13 @@ enum stage {
     STAGE_TONES,
     STAGE_PULSES,
     STAGE_STRIPS,
+    STAGE_OTHERS,
     STAGE_COMPARE,
     STAGE_COUNT
 };
-static const char *const stage_names[STAGE_COUNT] = {"blocks",   "pick",  "health", "levels", "gate",
-                                                     "impulses", "tones", "pulses", "strips", "compare"};
+static const char *const stage_names[STAGE_COUNT] = {"blocks", "pick",     "health", "levels",
+                                                     "gate",   "impulses", "tones",  "pulses",
+                                                     "strips", "others",   "compare"};
 
 static struct catalogue catalogue;
 static struct permit permit;
@@ -161,10 +164,17 @@ static void push_ear(struct ear *ear, const float *frames, uint32_t n, uint32_t 
         out[s] += times[s + 1] - times[s] - clock_s;
 }
 
+static void drop_found(void *context, const struct found_call *found)
+{
+    (void)context;
+    (void)found;
+}
+
 struct stages {
     const struct bench_sound *sound;
     struct ear ears[FLOW_MAX_CHANNELS];
     struct strips *strips;
+    struct others *others;
     uint64_t n_blocks;
     double clock_s, spent_s[STAGE_COUNT];
 };
@@ -181,7 +191,7 @@ static void run_stages(void *context, const struct block *block)
     struct stages *stages = context;
     const struct time_map map = {.rate_hz = stages->sound->rate_hz};
     const bool timed = stages->n_blocks++ % SAMPLED == 0;
-    double times[4] = {bench_cpu_s()};
+    double times[5] = {bench_cpu_s()};
     for (uint32_t c = 0; c < block->n_channels; c++)
         if (timed)
             push_ear(&stages->ears[c], block->samples, block->n_frames, block->n_channels, stages->clock_s,
@@ -192,14 +202,19 @@ static void run_stages(void *context, const struct block *block)
     strips_push(stages->strips, stages->ears[0].pascals, block->n_frames, &map,
                 &(struct column_sink){drop_column, NULL});
     times[2] = timed ? bench_cpu_s() : 0;
+    const float *second = block->n_channels > 1 ? stages->ears[1].pascals : NULL;
+    others_push(stages->others, stages->ears[0].pascals, second, block->n_frames,
+                &(struct found_sink){drop_found, NULL});
+    times[3] = timed ? bench_cpu_s() : 0;
     compare_ears(stages, block->n_channels);
-    times[3] = bench_cpu_s();
+    times[4] = bench_cpu_s();
     if (timed) {
         stages->spent_s[STAGE_STRIPS] += times[2] - times[1] - stages->clock_s;
-        stages->spent_s[STAGE_COMPARE] += times[3] - times[2] - stages->clock_s;
+        stages->spent_s[STAGE_OTHERS] += times[3] - times[2] - stages->clock_s;
+        stages->spent_s[STAGE_COMPARE] += times[4] - times[3] - stages->clock_s;
     }
     stages->spent_s[STAGE_BLOCKS] -=
-        times[3] - times[0] + stages->clock_s; /* the rest of the time is theirs */
+        times[4] - times[0] + stages->clock_s; /* the rest of the time is theirs */
 }
 
 /* Each stage by itself, each block through every channel; false without memory. */
@@ -222,6 +237,8 @@ static bool stages_s(const struct bench_sound *sound, double out[STAGE_COUNT])
             return false;
     }
     if (strips_create(sound->rate_hz, false, &stages.strips) ||
+        others_create(catalogue.classes, catalogue.n_classes, sound->rate_hz, sound->n_channels > 1,
+                      &stages.others) ||
         blocks_create(1, sound->n_channels, sound->rate_hz, &blocks))
         return false;
     double start = bench_cpu_s();
@@ -232,6 +249,7 @@ static bool stages_s(const struct bench_sound *sound, double out[STAGE_COUNT])
         out[s] = fmin(out[s], stages.spent_s[s] * (s == STAGE_BLOCKS ? 1 : all_blocks));
     blocks_destroy(blocks);
     strips_destroy(stages.strips);
+    others_destroy(stages.others);
     for (uint32_t c = 0; c < sound->n_channels; c++)
         ear_destroy(&stages.ears[c]);
     return true;

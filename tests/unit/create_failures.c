@@ -5,6 +5,7 @@
 #include "support/test.h"
 
 #include "call/gate.h"
+#include "call/others.h"
 #include "call/pulses.h"
 #include "call/tones.h"
 #include "dsp/background.h"
@@ -181,6 +182,7 @@ CASE(health, health_create(RATE, &calibration, &made))
 CASE(impulse_finder, impulse_finder_create(RATE, 1000, true, &made))
 CASE(tones, tones_create(catalogue.classes, catalogue.n_classes, RATE, &made))
 CASE(pulses, pulses_create(catalogue.classes, catalogue.n_classes, RATE, &made))
+CASE(others, others_create(catalogue.classes, catalogue.n_classes, RATE, true, &made))
 CASE(gate, gate_create(RATE, 3, &made))
 CASE(blocks, blocks_create(1, 8, RATE, &made))
 CASE(strips, strips_create(RATE, true, &made))
@@ -224,10 +226,10 @@ CASE(render, render_create(&scene.scene, &made))
 #object, make_##object, end_##object                                                                 \
     }
 static const struct create_case cases[] = {
-    LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),   LINE(health), LINE(impulse_finder),
-    LINE(tones),     LINE(pulses),   LINE(gate),       LINE(blocks),  LINE(strips), LINE(listen),
-    LINE(watch),     LINE(minutes),  LINE(merge),      LINE(watcher), LINE(board),  LINE(render),
-    LINE(exposure),  LINE(fit),      LINE(together),   LINE(tally),
+    LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),    LINE(health),  LINE(impulse_finder),
+    LINE(tones),     LINE(pulses),   LINE(others),     LINE(gate),     LINE(blocks),  LINE(strips),
+    LINE(listen),    LINE(watch),    LINE(minutes),    LINE(merge),    LINE(watcher), LINE(board),
+    LINE(render),    LINE(exposure), LINE(fit),        LINE(together), LINE(tally),
 };
 
 static void fail_each_allocation(const struct create_case *one)
