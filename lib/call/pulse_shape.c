@@ -25,8 +25,9 @@
 #define ALIKE_DB 3.0F
 #define APART_DB 6.0F
 #define PARTS_WEIGHT 0.5F
-#define ECHO_WEIGHT 6.0F
+#define ECHO_WEIGHT 8.0F
 #define ECHO_MIDDLE 0.5F
+#define LEAST_ECHO 0.02 /* what stands out less is no structure */
 
 struct pulse_shaper {
     double rate_hz, low_hz, high_hz;
@@ -274,7 +275,7 @@ static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *s
     double spread = NOISE_SPREAD * sqrt(sound->background_pa2 / shaper->bin_slots),
            variance = spread * spread;
     double one = (2 * energy * variance + n * variance * variance) / fmax(energy * energy, 1e-300);
-    out->echoes_doubt = (float)sqrt(one * fmax(1, shaper->lag_step));
+    out->echoes_doubt = (float)sqrt(one * fmax(1, shaper->lag_step) + LEAST_ECHO * LEAST_ECHO);
     for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++) {
         uint32_t from = shaper->first_lag + (uint32_t)(l * shaper->lag_step);
         uint32_t to = shaper->first_lag + (uint32_t)((l + 1) * shaper->lag_step);

@@ -239,7 +239,7 @@ static void hear_all(bool one_pulse, double least)
 static void overlapping_codas_keep_their_whales(void **state)
 {
     (void)state;
-    hear_all(false, 0.85);
+    hear_all(false, 0.9);
 }
 
 static void so_do_codas_that_only_their_level_tells_apart(void **state)
