@@ -7,7 +7,7 @@
 
 #define APART_SPREAD_DB 8.0 /* of the level, between animals; like ALIKE_SPREAD_DB a judgement, no source */
 #define MOST_PASSES 4
-#define JOINS_FROM -2.5 /* ratio: a stray among the clicks of a coda is rarer than another of its clicks */
+#define JOINS_FROM -4.0 /* ratio: a stray among the clicks of a coda is rarer than another of its clicks */
 #define NONE UINT32_MAX
 
 /* Sums over the pulses of a group, from which its mean follows, with any one of them left out. */
