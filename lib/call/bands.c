@@ -2,6 +2,7 @@
 #include "call/bands.h"
 #include "dsp/filter.h"
 #include "dsp/lanes.h"
+#include <complex.h>
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -12,11 +13,15 @@
     16                    /* for which a row has room at least before its history is moved to its front, ... \
                            */
 #define SPARE_HISTORIES 3 /* ... and so many times the history */
+#define RESPONSE_POINTS 512
+#define SKIRT 4               /* times beyond a band is where its filter is looked at */
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
 
-/* Upcrossings of a level by a sliding window in one window's time, over the tail of one window and over the
- * level (with which they grow, as Rice's formula has it); measured in white noise. */
-#define UPCROSSINGS 0.65
+/* Upcrossings of a level by a sliding window in one window's time, over the tail of one window, the level and
+ * the freedom (with which they grow, as Rice's formula has it: the square root of the freedom is how fast the
+ * window's power wanders, and another that of the level); measured in white noise, the same within 6 % for
+ * freedoms of 5 to 10. */
+#define UPCROSSINGS 0.102
 
 struct group {
     lanes gain, a1[SECTIONS], a2[SECTIONS];
@@ -25,9 +30,11 @@ struct group {
 };
 
 struct bands {
+    double rate_hz;
     uint32_t n, n_groups, slot_frames, block_slots, history_slots;
     uint32_t stride, at;              /* of the rows of power, and where in them the last block begins */
     struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
+    struct band_edges edges[BANDS_MAX];
     double delay[BANDS_MAX];
     struct group groups[BANDS_MAX / LANES];
     float *power;   /* [n_groups * LANES][stride] */
@@ -66,53 +73,97 @@ static double energy_centre(const double *response, uint32_t n)
     return moment / energy;
 }
 
-/* Autocorrelation of filtered white noise: the response against itself, lag frames later. */
-static double autocorrelation(const double *response, uint32_t n, uint32_t lag)
-{
-    double sum = 0;
-    for (uint32_t k = lag; k < n; k++)
-        sum += response[k] * response[k - lag];
-    return sum;
-}
+/* What the parts make of noise of a slope, at RESPONSE_POINTS frequencies from below the band to above it:
+ * amplitudes, each part's phase from its own lateness on, weighted so that each part has as much power as
+ * white noise would give it; the sum of all powers is 1. */
+struct responses {
+    uint32_t n;
+    double radians[RESPONSE_POINTS]; /* a frame */
+    double complex part[BANDS_MAX_PARTS][RESPONSE_POINTS];
+};
 
-/* Traces of the second and third power of the matrix of correlations r[|i - j|] of m points. */
-static void find_traces(const double *r, uint32_t m, double *matrix, double *out_square, double *out_cube)
+static void find_responses(const struct bands *bands, const struct band_parts *parts, double slope_db,
+                           struct responses *out)
 {
-    for (uint32_t i = 0; i < m; i++)
-        for (uint32_t j = 0; j < m; j++)
-            matrix[i * m + j] = r[i > j ? i - j : j - i];
-    double square = 0, cube = 0;
-    for (uint32_t i = 0; i < m; i++)
-        for (uint32_t j = i; j < m; j++) {
-            double ij = matrix[i * m + j], product = 0;
-            for (uint32_t k = 0; k < m; k++)
-                product += matrix[i * m + k] * matrix[j * m + k];
-            square += (i == j ? 1 : 2) * ij * ij;
-            cube += (i == j ? 1 : 2) * ij * product;
+    const struct band_edges *edges = bands->edges;
+    double low = edges[parts->bands[0]].low_hz, high = edges[parts->bands[parts->n - 1]].high_hz;
+    double from = low / SKIRT, step = (fmin(SKIRT * high, bands->rate_hz / 2) - from) / RESPONSE_POINTS;
+    out->n = parts->n;
+    for (uint32_t p = 0; p < parts->n; p++) {
+        struct band_edges own = edges[parts->bands[p]];
+        double late = (double)parts->late_slots[p] * bands->slot_frames, power = 0;
+        for (uint32_t i = 0; i < RESPONSE_POINTS; i++) {
+            double hz = from + (i + 0.5) * step, amplitude = pow(hz / low, slope_db / 20);
+            out->radians[i] = 2 * M_PI * hz / bands->rate_hz;
+            double complex h = filter_response(&bands->filters[parts->bands[p]], hz, bands->rate_hz);
+            out->part[p][i] = amplitude * h * cexp(-I * out->radians[i] * late);
+            power += pow(cabs(out->part[p][i]), 2);
         }
-    *out_square = square;
-    *out_cube = cube;
+        double share = (own.high_hz - own.low_hz) / (high - low);
+        for (uint32_t i = 0; i < RESPONSE_POINTS; i++)
+            out->part[p][i] *= sqrt(share / power);
+    }
 }
 
-/* The sum of squares of m Gaussian variables so correlated has the cumulants m, 2 tr R^2, 8 tr R^3. */
-enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
-                                 struct window_statistics *out)
+/* r[p][q][k]: mean product of part p at one of m points of the window and part q k points later. */
+static void fill_correlations(const struct responses *responses, uint32_t frames, uint32_t m, double *r)
 {
-    uint32_t n = n_slots * bands->slot_frames;
-    uint32_t m = n < WINDOW_POINTS ? n : WINDOW_POINTS; /* the correlation is smooth between them */
-    double *r = malloc((m + (size_t)m * m + RESPONSE_FRAMES) * sizeof *r), square, cube;
-    if (!r)
-        return STATUS_NO_MEMORY;
-    double *matrix = r + m, *response = matrix + (size_t)m * m;
-    uint32_t length = find_response(bands->filters[b], response);
-    for (uint32_t k = 0; k < m; k++)
-        r[k] = autocorrelation(response, length, (uint32_t)((uint64_t)k * n / m)) /
-               autocorrelation(response, length, 0);
-    find_traces(r, m, matrix, &square, &cube);
+    memset(r, 0, responses->n * responses->n * m * sizeof *r);
+    for (uint32_t p = 0; p < responses->n; p++)
+        for (uint32_t q = 0; q < responses->n; q++)
+            for (uint32_t i = 0; i < RESPONSE_POINTS; i++) {
+                double complex both = conj(responses->part[p][i]) * responses->part[q][i];
+                double complex turn = cexp(I * responses->radians[i] * frames / m);
+                double real = creal(both), imaginary = cimag(both), c = creal(turn), s = cimag(turn);
+                for (uint32_t k = 0; k < m; k++) {
+                    r[(p * responses->n + q) * m + k] += real;
+                    double next = real * c - imaginary * s;
+                    imaginary = real * s + imaginary * c;
+                    real = next;
+                }
+            }
+}
+
+/* The correlation matrix R of n parts at m points of the window, [n * m][n * m]. */
+static void fill_matrix(const double *r, uint32_t n, uint32_t m, double *out)
+{
+    for (uint32_t i = 0; i < n * m; i++)
+        for (uint32_t j = 0; j < n * m; j++) {
+            uint32_t p = i / m, q = j / m, a = i % m, b = j % m;
+            out[i * n * m + j] = b >= a ? r[(p * n + q) * m + b - a] : r[(q * n + p) * m + a - b];
+        }
+}
+
+/* Traces of the first powers of R: m, tr R^2, tr R^3. The sum of squares of Gaussian variables so correlated
+ * has the cumulants m, 2 tr R^2, 8 tr R^3. */
+enum status bands_get_statistics(const struct bands *bands, const struct band_parts *parts, uint32_t n_slots,
+                                 double slope_db, struct window_statistics *out)
+{
+    uint32_t frames = n_slots * bands->slot_frames, most = WINDOW_POINTS / parts->n;
+    uint32_t m = frames < most ? frames : most, n = parts->n * m; /* R is smooth between them */
+    struct responses *responses = malloc(sizeof *responses);
+    double *r = malloc(parts->n * parts->n * m * sizeof *r), *matrix = malloc((size_t)n * n * sizeof *matrix);
+    if (responses && r && matrix) {
+        find_responses(bands, parts, slope_db, responses);
+        double square = 0, cube = 0;
+        fill_correlations(responses, frames, m, r);
+        fill_matrix(r, parts->n, m, matrix);
+        for (uint32_t i = 0; i < n; i++)
+            for (uint32_t j = 0; j < n; j++) {
+                double ij = matrix[i * n + j], inner = 0;
+                for (uint32_t k = 0; k < n; k++) /* R is symmetric */
+                    inner += matrix[j * n + k] * matrix[i * n + k];
+                square += ij * ij;
+                cube += ij * inner;
+            }
+        out->freedom = (double)m * m / square;
+        out->skewness = 8 * cube / pow(2 * square, 1.5);
+    }
+    enum status status = responses && r && matrix ? STATUS_OK : STATUS_NO_MEMORY;
     free(r);
-    out->freedom = (double)m * m / square;
-    out->skewness = 8 * cube / pow(2 * square, 1.5);
-    return STATUS_OK;
+    free(matrix);
+    free(responses);
+    return status;
 }
 
 /* Upper tail of the gamma distribution of shape a at x > a + 1: continued fraction of the incomplete gamma
@@ -130,7 +181,14 @@ double window_upcrossings(const struct window_statistics *statistics, double snr
     double freedom = 8 / (statistics->skewness * statistics->skewness), a = freedom / 2;
     double deviations = snr / sqrt(2 / statistics->freedom);
     double x = (freedom + deviations * sqrt(2 * freedom)) / 2;
-    return UPCROSSINGS * (1 + snr) * gamma_tail(a, fmax(x, a + 1));
+    return UPCROSSINGS * statistics->freedom * (1 + snr) * gamma_tail(a, fmax(x, a + 1));
+}
+
+double window_quantile(const struct window_statistics *statistics, double normal)
+{
+    double freedom = 8 / (statistics->skewness * statistics->skewness), part = 2 / (9 * freedom);
+    double deviations = freedom * (pow(1 - part + normal * sqrt(part), 3) - 1) / sqrt(2 * freedom);
+    return 1 + sqrt(2 / statistics->freedom) * deviations;
 }
 
 static void fill_group(struct bands *bands, uint32_t g)
@@ -161,6 +219,7 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     if (!bands)
         return STATUS_NO_MEMORY;
     memset(bands, 0, sizeof *bands);
+    bands->rate_hz = rate_hz;
     bands->n = n;
     bands->n_groups = (n + LANES - 1) / LANES;
     bands->slot_frames = slot_frames;
@@ -178,6 +237,7 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     }
     for (uint32_t b = 0; b < n; b++) {
         filter_band_pass(SECTIONS, edges[b].low_hz, edges[b].high_hz, rate_hz, &bands->filters[b]);
+        bands->edges[b] = edges[b];
         bands->delay[b] = energy_centre(response, find_response(bands->filters[b], response));
     }
     free(response);
@@ -280,6 +340,21 @@ const float *bands_get_samples(const struct bands *bands)
 double bands_get_delay(const struct bands *bands, uint32_t b)
 {
     return bands->delay[b];
+}
+
+struct band_edges bands_get_edges(const struct bands *bands, uint32_t b)
+{
+    return bands->edges[b];
+}
+
+double bands_align(const struct bands *bands, struct band_parts *parts)
+{
+    double latest = 0;
+    for (uint32_t p = 0; p < parts->n; p++)
+        latest = fmax(latest, bands->delay[parts->bands[p]]);
+    for (uint32_t p = 0; p < parts->n; p++)
+        parts->late_slots[p] = (uint32_t)round((latest - bands->delay[parts->bands[p]]) / bands->slot_frames);
+    return latest;
 }
 
 void bands_destroy(struct bands *bands)

@@ -10,11 +10,18 @@
 #include <stdbool.h>
 #include <stdint.h>
 
-#define BANDS_MAX 16
+#define BANDS_MAX 32
+#define BANDS_MAX_PARTS 4
 #define BANDS_HIGHEST 0.472 /* of the rate: the highest edge that a rate carries */
 
 struct band_edges {
     double low_hz, high_hz;
+};
+
+/* A band as the sum of adjoining ones of a bank, each taken `late_slots` late, so that what left the sea
+ * together is summed together. n = 0: no band. */
+struct band_parts {
+    uint32_t n, bands[BANDS_MAX_PARTS], late_slots[BANDS_MAX_PARTS];
 };
 
 struct bands;
@@ -39,7 +46,13 @@ const float *bands_get_power(const struct bands *bands, uint32_t b);
 const float *bands_get_samples(const struct bands *bands);
 /* Frames by which band b is late: the centre of its impulse response's energy. */
 double bands_get_delay(const struct bands *bands, uint32_t b);
-/* How the power over a window of n slots is distributed in white Gaussian noise, computed from the filter.
+struct band_edges bands_get_edges(const struct bands *bands, uint32_t b);
+/* Sets late_slots so that all parts are as late as the latest one, to half a slot; gives its delay, frames.
+ */
+double bands_align(const struct bands *bands, struct band_parts *parts);
+/* How the power over a window of n slots, the sum over the parts, is distributed in Gaussian noise whose
+ * density has that slope over the logarithm of frequency (dB a decade; 0: white), the parts weighted as
+ * call/whitened.h has it; computed from the filters, the correlation between the parts among them.
  * Its cumulants are those of a weighted sum of chi-square variables, the weights being the eigenvalues of the
  * window's correlation matrix. */
 struct window_statistics {
@@ -47,13 +60,16 @@ struct window_statistics {
     double skewness; /* third cumulant over variance^(3/2) */
 };
 /* STATUS_NO_MEMORY. For use at start. */
-enum status bands_get_statistics(const struct bands *bands, uint32_t b, uint32_t n_slots,
-                                 struct window_statistics *out);
+enum status bands_get_statistics(const struct bands *bands, const struct band_parts *parts, uint32_t n_slots,
+                                 double slope_db, struct window_statistics *out);
 /* How often, in one window's time, the power over a sliding window rises above 1 + snr times its mean in
  * white Gaussian noise: the tail of a shifted chi-square with the same three cumulants (Buckley and Eagleson,
  * "An approximation to the distribution of quadratic forms in normal random variables", 1988) times a
  * measured constant. */
 double window_upcrossings(const struct window_statistics *statistics, double snr);
+/* Quantile of that law over its mean, for the quantile of the normal law: 0 gives the median (Wilson and
+ * Hilferty, "The distribution of chi-square", 1931). */
+double window_quantile(const struct window_statistics *statistics, double normal);
 void bands_destroy(struct bands *bands);
 
 #endif

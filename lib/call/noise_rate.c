@@ -25,6 +25,47 @@ double noise_table_get(const struct noise_table *table, double snr)
     return exp(table->ln_rate[i] * (1 - part) + table->ln_rate[i + 1] * part);
 }
 
+#define LEAST_SLOPE (-30.0)
+#define SLOPE_STEP 10.0
+
+double noise_slope(int s)
+{
+    return LEAST_SLOPE + s * SLOPE_STEP;
+}
+
+void noise_tables_fill(const struct window_statistics statistics[NOISE_SLOPES], double pulse_s,
+                       struct noise_tables *out)
+{
+    for (int s = 0; s < NOISE_SLOPES; s++) {
+        out->median_ratio[s] = window_quantile(&statistics[s], 0);
+        noise_table_fill(&statistics[s], pulse_s, &out->tables[s]);
+    }
+}
+
+/* Between which two tables a slope lies, and how far. */
+static double place_of(double slope_db, int *out_first)
+{
+    double place = fmin(NOISE_SLOPES - 1, fmax(0, (slope_db - LEAST_SLOPE) / SLOPE_STEP));
+    *out_first = (int)fmin(NOISE_SLOPES - 2, place);
+    return place - *out_first;
+}
+
+double noise_tables_get(const struct noise_tables *tables, double slope_db, double snr)
+{
+    int s;
+    double part = place_of(slope_db, &s);
+    double low = noise_table_get(&tables->tables[s], snr),
+           high = noise_table_get(&tables->tables[s + 1], snr);
+    return low > 0 && high > 0 ? low * pow(high / low, part) : low * (1 - part) + high * part;
+}
+
+double noise_tables_get_median(const struct noise_tables *tables, double slope_db)
+{
+    int s;
+    double part = place_of(slope_db, &s);
+    return tables->median_ratio[s] * (1 - part) + tables->median_ratio[s + 1] * part;
+}
+
 double noise_rate_competing(const struct noise_rate *noise, double snr, double least_snr, double spread_db)
 {
     const double step_db = 0.25;

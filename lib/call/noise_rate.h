@@ -1,5 +1,8 @@
-/* How often white Gaussian noise gives a pulse of a class: window_upcrossings (bands.h) in a table, since it
- * is asked for with every pulse and takes as long as 2,000 frames of filters. */
+/* How often Gaussian noise gives a pulse of a class: window_upcrossings (bands.h) in tables, since it is
+ * asked for with every pulse and takes as long as 2,000 frames of filters. The noise of the sea falls with
+ * frequency; noise whose density is uneven through a band is worth fewer independent looks than white noise,
+ * so that its windows spread more and its pulses come more often: a tenth more spread doubles them. There is
+ * a table for each of several slopes, and the slope that is heard chooses. */
 #ifndef CALL_NOISE_RATE_H
 #define CALL_NOISE_RATE_H
 
@@ -23,6 +26,23 @@ struct noise_table {
     double step;                       /* of snr (ratio), from 0 */
     double ln_rate[NOISE_RATE_POINTS]; /* nearly straight over snr: within 0.1 % between the points */
 };
+
+#define NOISE_SLOPES 6
+
+struct noise_tables {
+    double median_ratio[NOISE_SLOPES]; /* median over mean of a window's power */
+    struct noise_table tables[NOISE_SLOPES];
+};
+
+/* The slope of table s, dB a decade. */
+double noise_slope(int s);
+/* For a class whose window, so distributed at each slope, lasts pulse_s. */
+void noise_tables_fill(const struct window_statistics statistics[NOISE_SLOPES], double pulse_s,
+                       struct noise_tables *out);
+/* Pulses a second of this snr (ratio) or more in noise of that slope (dB a decade); 0 where they are fewer
+ * than 1e-13. */
+double noise_tables_get(const struct noise_tables *tables, double slope_db, double snr);
+double noise_tables_get_median(const struct noise_tables *tables, double slope_db);
 
 /* For a class whose window lasts pulse_s. */
 void noise_table_fill(const struct window_statistics *statistics, double pulse_s, struct noise_table *out);

@@ -37,7 +37,7 @@ struct pulse_shaper {
     uint32_t bin_slots;        /* of the envelope: half a pulse */
     uint32_t reach, first_lag; /* bins */
     double lag_step;           /* bins */
-    float *window, *frame;
+    float *window, *frame, *noise;
     fftwf_complex *bins, *analytic;
     fftwf_plan forward, backward;
     float *envelope; /* [3 * reach] */
@@ -91,10 +91,12 @@ enum status pulse_shaper_create(const struct call_class *call_class, double rate
     shaper->lag_step = (double)(shaper->reach - shaper->first_lag) / PULSE_SHAPE_LAGS;
     shaper->window = calloc(shaper->segment, sizeof(float));
     shaper->envelope = calloc(3 * (size_t)shaper->reach, sizeof(float));
+    shaper->noise = calloc(shaper->n / 2 + 1, sizeof(float));
     shaper->frame = fftwf_alloc_real(shaper->n);
     shaper->bins = fftwf_alloc_complex(shaper->n / 2 + 1);
     shaper->analytic = fftwf_alloc_complex(shaper->n);
-    if (!shaper->window || !shaper->envelope || !shaper->frame || !shaper->bins || !shaper->analytic) {
+    if (!shaper->window || !shaper->envelope || !shaper->noise || !shaper->frame || !shaper->bins ||
+        !shaper->analytic) {
         pulse_shaper_destroy(shaper);
         return STATUS_NO_MEMORY;
     }
@@ -141,18 +143,19 @@ static double power_of(const fftwf_complex value)
     return (double)value[0] * value[0] + (double)value[1] * value[1];
 }
 
-/* Noise that the background explains, of one bin. */
-static double noise_bin(const struct pulse_shaper *shaper, double background_pa2)
+/* Noise that the background explains, of each bin of the band. */
+static void find_noise(struct pulse_shaper *shaper, const struct noise_density *density)
 {
-    double density = background_pa2 / (shaper->high_hz - shaper->low_hz);
-    return density * shaper->rate_hz / 2 * shaper->window_energy;
+    double bin_hz = shaper->rate_hz / shaper->n, gain = shaper->rate_hz / 2 * shaper->window_energy;
+    for (uint32_t k = shaper->edge_bins[0]; k < shaper->edge_bins[PULSE_SHAPE_BANDS]; k++)
+        shaper->noise[k] = (float)(gain * noise_density_at(density, k * bin_hz));
 }
 
-static void find_spectrum(const struct pulse_shaper *shaper, double noise, struct pulse_shape *out)
+static void find_spectrum(const struct pulse_shaper *shaper, struct pulse_shape *out)
 {
     double bin_hz = shaper->rate_hz / shaper->n, sum = 0, moment = 0, square = 0, greatest = -1;
     for (uint32_t k = shaper->edge_bins[0]; k < shaper->edge_bins[PULSE_SHAPE_BANDS]; k++) {
-        double power = power_of(shaper->bins[k]), excess = fmax(0, power - 2 * noise);
+        double power = power_of(shaper->bins[k]), excess = fmax(0, power - 2 * (double)shaper->noise[k]);
         sum += excess;
         moment += excess * k;
         square += excess * k * k;
@@ -166,18 +169,20 @@ static void find_spectrum(const struct pulse_shaper *shaper, double noise, struc
     out->bandwidth_hz = (float)(sum > 0 ? sqrt(fmax(0, square / sum - centre * centre)) * bin_hz : 0);
 }
 
-static void find_parts(const struct pulse_shaper *shaper, double noise, struct pulse_shape *out)
+static void find_parts(const struct pulse_shaper *shaper, struct pulse_shape *out)
 {
-    double energy[PULSE_SHAPE_BANDS], total = 0;
+    double energy[PULSE_SHAPE_BANDS], noise[PULSE_SHAPE_BANDS], total = 0;
     for (uint32_t b = 0; b < PULSE_SHAPE_BANDS; b++) {
-        energy[b] = 0;
-        for (uint32_t k = shaper->edge_bins[b]; k < shaper->edge_bins[b + 1]; k++)
+        energy[b] = noise[b] = 0;
+        for (uint32_t k = shaper->edge_bins[b]; k < shaper->edge_bins[b + 1]; k++) {
             energy[b] += power_of(shaper->bins[k]);
+            noise[b] += (double)shaper->noise[k];
+        }
         total += energy[b];
     }
     for (uint32_t b = 0; b < PULSE_SHAPE_BANDS; b++) {
         double bins = (double)shaper->edge_bins[b + 1] - shaper->edge_bins[b];
-        double free = fmax(1, bins * shaper->segment / shaper->n), noise_energy = bins * noise;
+        double free = fmax(1, bins * shaper->segment / shaper->n), noise_energy = noise[b];
         double spread = noise_energy / sqrt(free), found = fmax(energy[b] - noise_energy, spread);
         found = fmax(found, 1e-4 * total); /* the window's leakage */
         double doubt = sqrt(spread * spread + 2 * found * noise_energy / free) / fmax(found, 1e-300);
@@ -288,10 +293,10 @@ static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *s
 
 void pulse_shaper_get(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out)
 {
-    double noise = noise_bin(shaper, sound->background_pa2);
+    find_noise(shaper, &sound->density);
     transform(shaper, sound);
-    find_spectrum(shaper, noise, out);
-    find_parts(shaper, noise, out);
+    find_spectrum(shaper, out);
+    find_parts(shaper, out);
     find_time_course(shaper, out);
     find_echoes(shaper, sound, out);
     pulse_shape_centre(out);
@@ -319,6 +324,7 @@ void pulse_shaper_destroy(struct pulse_shaper *shaper)
         fftwf_destroy_plan(shaper->backward);
     free(shaper->window);
     free(shaper->envelope);
+    free(shaper->noise);
     fftwf_free(shaper->frame);
     fftwf_free(shaper->bins);
     fftwf_free(shaper->analytic);

@@ -11,6 +11,7 @@
 
 #include "base/status.h"
 #include "call/catalogue.h"
+#include "call/whitened.h"
 #include <stdint.h>
 
 #define PULSE_SHAPE_BANDS 8
@@ -44,9 +45,10 @@ uint32_t pulse_shaper_slots(const struct pulse_shaper *shaper);
 struct pulse_sound {
     const float *samples; /* pascals, unfiltered; samples[0] is the frame of the arrival */
     int64_t samples_before, samples_after;
-    const float *power; /* mean square of each slot of the band */
+    const float *power; /* mean square of each slot of the band, whitened */
     int64_t slots_before, slots_after;
     double background_pa2; /* mean square of the band's noise */
+    struct noise_density density;
 };
 void pulse_shaper_get(struct pulse_shaper *shaper, const struct pulse_sound *sound, struct pulse_shape *out);
 void pulse_shaper_destroy(struct pulse_shaper *shaper);

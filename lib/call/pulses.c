@@ -22,6 +22,7 @@
 #define PIECE_FRAMES 1024 /* pushed to a decimator at a time */
 #define MAX_STAGES 8
 #define NOWHERE UINT32_MAX
+#define SPLIT_RATIO 3.0 /* of its edges, from which a class's band is heard in parts */
 
 /* Classes that run at one rate. */
 struct stage {
@@ -43,7 +44,8 @@ struct stage {
 /* One hearable class. */
 struct ear {
     const struct call_class *call_class;
-    uint32_t class_index, stage, band, guards[TRIGGER_GUARDS];
+    uint32_t class_index, stage;
+    struct band_parts band, guards[TRIGGER_GUARDS];
     struct trigger *trigger;
     struct tied tied;
     struct hidden hidden;
@@ -115,6 +117,22 @@ static struct stage *stage_of(struct pulses *pulses, uint32_t factor, uint32_t *
     return &pulses->stages[s];
 }
 
+/* Adds a class's band to its stage, in parts where it is wide: an octave each, so that in noise that falls
+ * steeply none is far from white. */
+static enum status add_parts(struct stage *stage, double low_hz, double high_hz, struct band_parts *out)
+{
+    double ratio = high_hz / low_hz;
+    out->n = ratio < SPLIT_RATIO ? 1 : (uint32_t)fmin(BANDS_MAX_PARTS, fmax(2, round(log2(ratio))));
+    for (uint32_t p = 0; p < out->n; p++) {
+        double from = p == 0 ? low_hz : low_hz * pow(ratio, (double)p / out->n);
+        double to = p + 1 == out->n ? high_hz : low_hz * pow(ratio, (p + 1.0) / out->n);
+        out->bands[p] = add_edges(stage, from, to);
+        if (out->bands[p] == BANDS_MAX)
+            return STATUS_BAD_ARGUMENT;
+    }
+    return STATUS_OK;
+}
+
 static enum status add_ear(struct pulses *pulses, const struct call_class *call_class, uint32_t class_index)
 {
     struct ear *ear = &pulses->ears[pulses->n_ears];
@@ -122,21 +140,41 @@ static enum status add_ear(struct pulses *pulses, const struct call_class *call_
     struct stage *stage = stage_of(pulses, factor_of(call_class, pulses->rate_hz), &ear->stage);
     if (!stage)
         return STATUS_BAD_ARGUMENT;
-    const struct train_shape *shape = &call_class->train;
-    ear->band = add_edges(stage, call_class->low_hz, call_class->high_hz);
-    struct band_edges upper = {shape->upper_low_hz, shape->upper_high_hz};
-    ear->guards[0] = ear->guards[1] = TRIGGER_NO_GUARD;
-    if (shape->guard_high_hz > 0)
-        ear->guards[0] = add_edges(stage, shape->guard_low_hz, shape->guard_high_hz);
-    if (upper.high_hz > 0 && bands_rate_carries(stage->rate_hz, upper))
-        ear->guards[1] = add_edges(stage, upper.low_hz, upper.high_hz);
-    if (ear->band == BANDS_MAX || ear->guards[0] == BANDS_MAX || ear->guards[1] == BANDS_MAX)
-        return STATUS_BAD_ARGUMENT;
-    uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * stage->rate_hz / SLOTS_PER_PULSE));
+    uint32_t slot = (uint32_t)fmax(1, round(call_class->train.pulse_s * stage->rate_hz / SLOTS_PER_PULSE));
     if (!stage->slot_frames || slot < stage->slot_frames)
         stage->slot_frames = slot;
     pulses->n_ears++;
-    return STATUS_OK;
+    return add_parts(stage, call_class->low_hz, call_class->high_hz, &ear->band);
+}
+
+/* A guard band: that of a class in its parts where one has the same edges, else a band of its own. */
+static enum status add_guard(struct pulses *pulses, uint32_t stage, double low_hz, double high_hz,
+                             struct band_parts *out)
+{
+    for (uint32_t e = 0; e < pulses->n_ears; e++) {
+        const struct ear *ear = &pulses->ears[e];
+        if (ear->stage == stage && ear->call_class->low_hz == low_hz && ear->call_class->high_hz == high_hz) {
+            *out = ear->band;
+            return STATUS_OK;
+        }
+    }
+    out->n = 1;
+    out->bands[0] = add_edges(&pulses->stages[stage], low_hz, high_hz);
+    return out->bands[0] == BANDS_MAX ? STATUS_BAD_ARGUMENT : STATUS_OK;
+}
+
+/* Once all classes have their bands. */
+static enum status add_guards(struct pulses *pulses, struct ear *ear)
+{
+    const struct train_shape *shape = &ear->call_class->train;
+    struct band_edges upper = {shape->upper_low_hz, shape->upper_high_hz};
+    enum status status = STATUS_OK;
+    if (shape->guard_high_hz > 0)
+        status = add_guard(pulses, ear->stage, shape->guard_low_hz, shape->guard_high_hz, &ear->guards[0]);
+    if (status == STATUS_OK && upper.high_hz > 0 &&
+        bands_rate_carries(pulses->stages[ear->stage].rate_hz, upper))
+        status = add_guard(pulses, ear->stage, upper.low_hz, upper.high_hz, &ear->guards[1]);
+    return status;
 }
 
 /* A stage takes the samples of the slowest stage before it that is still faster: what both need is filtered
@@ -241,6 +279,8 @@ enum status pulses_create(const struct call_class *classes, uint32_t n_classes, 
     for (uint32_t c = 0; c < n_classes && status == STATUS_OK; c++)
         if (is_hearable(&classes[c], rate_hz))
             status = add_ear(pulses, &classes[c], c);
+    for (uint32_t e = 0; e < pulses->n_ears && status == STATUS_OK; e++)
+        status = add_guards(pulses, &pulses->ears[e]);
     sort_stages(pulses);
     for (uint32_t s = 0; s < pulses->n_stages && status == STATUS_OK; s++)
         status = create_stage(pulses, s);

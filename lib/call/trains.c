@@ -29,7 +29,6 @@ enum status trains_create(const struct call_class *call_class, double rate_hz, s
     trains->call_class = *call_class;
     trains->rate_hz = rate_hz;
     trains->noise = noise;
-    trains->all_noise = trains_noise_rate(trains, units_power_ratio(shape->min_snr_db));
     trains->deviation[NARROW] = shape->max_jitter / 4;
     trains->deviation[WIDE] = shape->max_jitter;
     for (int spread = NARROW; spread <= WIDE; spread++)

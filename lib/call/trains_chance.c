@@ -77,7 +77,9 @@ static double competing_strays(const struct trains *trains, const struct node *n
                                const struct competitors *found, uint32_t n)
 {
     double limit_db = node->level_db - LEVEL_STEP_DB;
-    double noise = fmin(trains->all_noise, trains_noise_rate(trains, units_power_ratio(limit_db)));
+    double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
+    double noise =
+        fmin(trains_noise_rate(trains, least_snr), trains_noise_rate(trains, units_power_ratio(limit_db)));
     double around = count_above(trains->competing, found->n, limit_db);
     double excess = fmax(0, around - noise * found->time_s);
     return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s;

@@ -66,7 +66,6 @@ struct trains {
     struct call_class call_class;
     double rate_hz;
     struct noise_rate noise;
-    double all_noise;                /* pulses a second that noise gives at min_snr_db */
     double ln_peak[2], deviation[2]; /* of ln(interval ratio): a quarter of max_jitter, and max_jitter */
     double ln_steps[MAX_STEP + 1];   /* ln p_d (1 - p_d)^(m - 1) */
     double ln_m[MAX_STEP + 1];

@@ -2,26 +2,24 @@
 #include "call/trigger.h"
 #include "base/units.h"
 #include "call/noise_rate.h"
-#include "call/window_median.h"
+#include "call/trigger_sizes.h"
+#include "call/whitened.h"
 #include "dsp/lanes.h"
 #include <math.h>
 #include <stdbool.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define MAX_ECHO_S 0.03
 #define FALL 10.0            /* a pulse is over when its window has fallen by this ratio (10 dB) */
 #define RISE 4.0             /* a new pulse in the tail of another must rise by this ratio (6 dB) */
 #define FROZEN_LENGTHS 8     /* a background stands still for so many longest pulses, then goes on */
 #define GUARD_DEVIATIONS 2.5 /* benefit of the doubt for a guard band of which noise is all we see */
-#define GUARD_MARGIN 2       /* slots: the two filters are not equally late */
-#define MOST_BLOCK_SLOTS 64  /* of the bank */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
 enum trigger_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 
 /* A band that must be quieter than the pulse. */
 struct guard {
-    bool used;
+    struct band_parts parts;
     uint32_t window, after; /* slots in all, and after the peak */
     double ratio;
     struct window_median median;
@@ -35,12 +33,14 @@ struct trigger {
     struct guard guards[TRIGGER_GUARDS];
     uint32_t guard_window, guard_after; /* of the longest */
     double threshold;                   /* ratio of a window's power to the background */
-    struct noise_table noise;
+    struct noise_tables noise;
     double echo_frames, tail_frames;
 
     enum trigger_state state;
+    struct whitened *whitened;
+    double delay_frames; /* of the bank: by which its power is late */
     struct window_median band;
-    float settle[WINDOW_MEDIAN_SETTLE];
+    double slope_db; /* of the noise, a decade */
     uint32_t n_settled, frozen_slots;
     uint32_t run; /* windows since one lay on the other side of the median */
     bool run_above;
@@ -57,66 +57,23 @@ struct trigger {
     uint64_t block_slot; /* slots before the block that the bank holds */
 };
 
-static uint32_t window_slots(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
-{
-    double slots = call_class->train.pulse_s * rate_hz / slot_frames;
-    return slots < 1.5 ? 1 : (uint32_t)lround(slots);
-}
-
-static uint32_t open_slots(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
-{
-    return (uint32_t)ceil(call_class->train.max_pulse_s * rate_hz / slot_frames) +
-           2 * window_slots(call_class, rate_hz, slot_frames);
-}
-
-/* A guard band answers no faster than its width lets it: its window is at least two of its response times. */
-static uint32_t guard_slots(const struct call_class *call_class, double width_hz, double rate_hz,
-                            uint32_t slot_frames)
-{
-    if (width_hz <= 0)
-        return 0;
-    double seconds = fmax(call_class->train.pulse_s, 2 / width_hz);
-    return (uint32_t)ceil(seconds * rate_hz / slot_frames) + 2 * GUARD_MARGIN;
-}
-
-uint32_t trigger_get_history(const struct call_class *call_class, double rate_hz, uint32_t slot_frames)
-{
-    /* From where the first of a pulse's echoes could be known to where the last is: then it is looked at. */
-    double echo = trigger_get_echo(call_class) * rate_hz / slot_frames;
-    const struct train_shape *shape = &call_class->train;
-    double width = shape->guard_high_hz - shape->guard_low_hz,
-           upper = shape->upper_high_hz - shape->upper_low_hz;
-    uint32_t guard = guard_slots(call_class, width, rate_hz, slot_frames) +
-                     guard_slots(call_class, upper, rate_hz, slot_frames);
-    double reach = fmax(PULSE_SHAPE_REACH_S * rate_hz / slot_frames, PULSE_SHAPE_LAGS);
-    return 2 * open_slots(call_class, rate_hz, slot_frames) +
-           8 * window_slots(call_class, rate_hz, slot_frames) + guard + (uint32_t)ceil(echo + reach) +
-           MOST_BLOCK_SLOTS * 2 + 8;
-}
-
-double trigger_get_echo(const struct call_class *call_class)
-{
-    double stated = call_class->train.echo_s;
-    return stated > 0 ? stated : fmin(MAX_ECHO_S, call_class->train.min_interval_s / 4);
-}
-
 /* Fills the guard that the setup names. */
 static enum status fill_guard(struct trigger *trigger, uint32_t g, double step)
 {
     const struct trigger_setup *setup = &trigger->setup;
     const struct train_shape *shape = &setup->call_class->train;
     struct guard *guard = &trigger->guards[g];
-    guard->used = setup->guards[g] != TRIGGER_NO_GUARD;
-    if (!guard->used)
+    guard->parts = setup->guards[g];
+    if (guard->parts.n == 0)
         return STATUS_OK;
     double width =
         g == 0 ? shape->guard_high_hz - shape->guard_low_hz : shape->upper_high_hz - shape->upper_low_hz;
     guard->ratio = units_power_ratio(-(g == 0 ? shape->min_guard_db : shape->min_upper_db));
-    guard->window = guard_slots(setup->call_class, width, setup->rate_hz, setup->slot_frames);
+    guard->window = trigger_guard_slots(setup->call_class, width, setup->rate_hz, setup->slot_frames);
     guard->after = guard->window > trigger->window ? (guard->window - trigger->window + 1) / 2 : 0;
     struct window_statistics statistics = {.freedom = 1, .skewness = 1};
-    enum status status = bands_get_statistics(setup->bands, setup->guards[g], guard->window, &statistics);
-    guard->median = window_median_of(statistics.freedom, step);
+    enum status status = bands_get_statistics(setup->bands, &guard->parts, guard->window, 0, &statistics);
+    guard->median = window_median_of(&statistics, step);
     if (guard->window > trigger->guard_window)
         trigger->guard_window = guard->window;
     if (guard->after > trigger->guard_after)
@@ -131,16 +88,29 @@ enum status trigger_create(const struct trigger_setup *setup, struct trigger **o
         return STATUS_NO_MEMORY;
     const struct train_shape *shape = &setup->call_class->train;
     trigger->setup = *setup;
-    trigger->window = window_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
-    trigger->max_open = open_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
+    trigger->window = trigger_window_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
+    trigger->max_open = trigger_open_slots(setup->call_class, setup->rate_hz, setup->slot_frames);
     trigger->threshold = 1 + units_power_ratio(shape->min_snr_db);
-    struct window_statistics band = {.freedom = 1, .skewness = 1};
-    enum status status = bands_get_statistics(setup->bands, setup->band, trigger->window, &band);
-    noise_table_fill(&band, shape->pulse_s, &trigger->noise);
     /* A step of 0.002 at 0.1 ms keeps the median within 0.1 dB and lets it follow 87 dB/s; longer windows
        step more, since there are fewer. */
     double step = fmin(0.05, 0.002 * fmax(1, sqrt(shape->pulse_s / 1e-4)));
-    trigger->band = window_median_of(band.freedom, step);
+    struct whitened_setup whitened = {.bands = setup->bands,
+                                      .parts = setup->band,
+                                      .window = trigger->window,
+                                      .step = step,
+                                      .block_slots = setup->block_slots,
+                                      .history_slots = setup->history_slots};
+    trigger->delay_frames = bands_align(setup->bands, &whitened.parts);
+    struct window_statistics band[NOISE_SLOPES];
+    enum status status = whitened_create(&whitened, &trigger->whitened);
+    for (int s = 0; s < NOISE_SLOPES; s++) {
+        band[s] = (struct window_statistics){.freedom = 1, .skewness = 1};
+        if (status == STATUS_OK)
+            status = bands_get_statistics(setup->bands, &whitened.parts, trigger->window, noise_slope(s),
+                                          &band[s]);
+    }
+    noise_tables_fill(band, shape->pulse_s, &trigger->noise);
+    trigger->band = window_median_of(&band[0], step);
     for (uint32_t g = 0; g < TRIGGER_GUARDS && status == STATUS_OK; g++)
         status = fill_guard(trigger, g, step);
     trigger->echo_frames = trigger_get_echo(setup->call_class) * setup->rate_hz * setup->frames_per_frame;
@@ -166,60 +136,74 @@ void trigger_reset(struct trigger *trigger)
     trigger->block_slot = 0;
     trigger->held = (struct pulse){.frame = -INFINITY};
     trigger->holds = false;
+    whitened_reset(trigger->whitened);
     window_median_reset(&trigger->band);
+    trigger->slope_db = 0;
     for (uint32_t g = 0; g < TRIGGER_GUARDS; g++)
         window_median_reset(&trigger->guards[g].median);
 }
 
-static double sum_slots(const float *power, uint32_t n)
+/* Mean power of a guard's window that ends with slot `last`. */
+static double guard_power(const struct trigger *trigger, const struct guard *guard, int64_t last)
 {
-    lanes first = {0}, second = {0};
-    uint32_t i = 0;
-    for (; i + 2 * LANES <= n; i += 2 * LANES) {
-        first += lanes_load(power + i);
-        second += lanes_load(power + i + LANES);
-    }
-    double sum = lanes_sum(first + second);
-    for (; i < n; i++)
-        sum += power[i];
+    double sum = 0;
+    for (uint32_t p = 0; p < guard->parts.n; p++)
+        sum +=
+            window_power(bands_get_power(trigger->setup.bands, guard->parts.bands[p]), last, guard->window);
     return sum;
 }
 
-/* Mean power of the window that ends with slot `last`. */
-static double window_power(const float *power, int64_t last, uint32_t window)
-{
-    return sum_slots(power + last + 1 - (int64_t)window, window) / window;
-}
-
-static const float *guard_power(const struct trigger *trigger, uint32_t g)
-{
-    return bands_get_power(trigger->setup.bands, trigger->setup.guards[g]);
-}
-
 /* Takes one of the first windows; gives whether they are enough. */
-static bool settle_on(struct trigger *trigger, int64_t slot, const float *band)
+static bool settle_on(struct trigger *trigger, int64_t slot)
 {
     if (trigger->n_slots + (uint64_t)slot < 4 * trigger->window + 2 * trigger->guard_window)
         return false; /* the filters are still filling */
-    trigger->settle[trigger->n_settled] = (float)window_power(band, slot, trigger->window);
+    whitened_settle_on(trigger->whitened, slot, trigger->n_settled);
     for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
         struct guard *guard = &trigger->guards[g];
-        if (guard->used)
-            guard->settle[trigger->n_settled] =
-                (float)window_power(guard_power(trigger, g), slot, guard->window);
+        if (guard->parts.n)
+            guard->settle[trigger->n_settled] = (float)guard_power(trigger, guard, slot);
     }
     return ++trigger->n_settled == WINDOW_MEDIAN_SETTLE;
 }
 
+/* Window means of the block, and the greatest of them. */
+static float sum_windows(struct trigger *trigger)
+{
+    const float *band = whitened_get_power(trigger->whitened);
+    const uint32_t n = trigger->setup.block_slots, window = trigger->window;
+    const float scale = 1.0F / (float)window;
+    lanes greatest = {0};
+    for (uint32_t i = 0; i < n; i += 2 * LANES) {
+        lanes first = lanes_load(band + i), second = lanes_load(band + i + LANES);
+        const float *late = band + i;
+        for (uint32_t k = 1; k < window; k++) {
+            late--;
+            first += lanes_load(late);
+            second += lanes_load(late + LANES);
+        }
+        first *= scale;
+        second *= scale;
+        greatest = lanes_greatest(lanes_greatest(first, second), greatest);
+        lanes_store(trigger->sums + i, first);
+        lanes_store(trigger->sums + i + LANES, second);
+    }
+    greatest = lanes_greatest(greatest, __builtin_shufflevector(greatest, greatest, 2, 3, 0, 1));
+    return greatest[0] > greatest[1] ? greatest[0] : greatest[1];
+}
+
 /* Once a window: every window counts once in the background. */
-static void learn(struct trigger *trigger, int64_t slot, const float *band)
+static void learn(struct trigger *trigger, int64_t slot)
 {
     if (trigger->state == SETTLING) {
-        if (!settle_on(trigger, slot, band))
+        float windows[WINDOW_MEDIAN_SETTLE];
+        if (!settle_on(trigger, slot))
             return;
-        window_median_settle(&trigger->band, trigger->settle);
+        whitened_settle(trigger->whitened, windows);
+        window_median_settle(&trigger->band, windows);
+        sum_windows(trigger);
         for (uint32_t g = 0; g < TRIGGER_GUARDS; g++)
-            if (trigger->guards[g].used)
+            if (trigger->guards[g].parts.n)
                 window_median_settle(&trigger->guards[g].median, trigger->guards[g].settle);
         trigger->state = IDLE;
         return;
@@ -227,10 +211,11 @@ static void learn(struct trigger *trigger, int64_t slot, const float *band)
     if (trigger->state != IDLE && trigger->frozen_slots < FROZEN_LENGTHS * trigger->max_open)
         return;
     bool above = window_median_follow(&trigger->band, trigger->sums[slot]);
+    whitened_follow(trigger->whitened, slot);
     for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
         struct guard *guard = &trigger->guards[g];
-        if (guard->used)
-            window_median_follow(&guard->median, window_power(guard_power(trigger, g), slot, guard->window));
+        if (guard->parts.n)
+            window_median_follow(&guard->median, guard_power(trigger, guard, slot));
     }
     trigger->run = trigger->run * (above == trigger->run_above) + 1;
     trigger->run_above = above;
@@ -247,15 +232,16 @@ static void look_at_held(struct trigger *trigger)
     const int64_t per_slot = setup->slot_frames, history = setup->history_slots;
     double from_block = trigger->held_slot - (double)trigger->block_slot; /* slots */
     int64_t slot = (int64_t)floor(from_block);
-    int64_t frame = llround(from_block * setup->slot_frames - bands_get_delay(setup->bands, setup->band));
+    int64_t frame = llround(from_block * setup->slot_frames - trigger->delay_frames);
     struct pulse_sound sound = {
         .samples = bands_get_samples(setup->bands) + frame,
         .samples_before = history * per_slot + frame,
         .samples_after = setup->block_slots * per_slot - frame,
-        .power = bands_get_power(setup->bands, setup->band) + slot,
+        .power = whitened_get_power(trigger->whitened) + slot,
         .slots_before = history + slot,
         .slots_after = setup->block_slots - slot,
         .background_pa2 = trigger->band.mean_pa2,
+        .density = whitened_get_density(trigger->whitened, trigger->band.mean_pa2),
     };
     pulse_shaper_get(trigger->shaper, &sound, &trigger->held.shape);
 }
@@ -311,13 +297,14 @@ double trigger_get_known(const struct trigger *trigger)
 /* False when a guard band holds too much energy around the pulse, beyond what its noise explains. */
 static bool guards_are_quiet(const struct trigger *trigger)
 {
-    double pulse = (trigger->peak_power - trigger->band.mean_pa2) * trigger->window;
+    double pulse =
+        whitened_get_excess(trigger->whitened, trigger->peak, trigger->band.mean_pa2) * trigger->window;
     for (uint32_t g = 0; g < TRIGGER_GUARDS; g++) {
         const struct guard *guard = &trigger->guards[g];
-        if (!guard->used)
+        if (guard->parts.n == 0)
             continue;
         double n = guard->window, background = guard->median.mean_pa2;
-        double power = window_power(guard_power(trigger, g), trigger->peak + guard->after, guard->window);
+        double power = guard_power(trigger, guard, trigger->peak + guard->after);
         double doubt = GUARD_DEVIATIONS * background * guard->median.deviation;
         if ((power - background) * n > pulse * guard->ratio + doubt * n)
             return false;
@@ -339,9 +326,11 @@ static double arrival_slot(const struct trigger *trigger, const float *band, int
     return sum > 0 ? moment / sum : (double)trigger->peak;
 }
 
-static double energy_until(const struct trigger *trigger, const float *band, int64_t slot)
+static double energy_until(const struct trigger *trigger, int64_t slot)
 {
-    double sum = slot < 0 ? -sum_slots(band + slot, (uint32_t)-slot) : sum_slots(band, (uint32_t)slot);
+    const struct whitened *whitened = trigger->whitened;
+    double sum =
+        slot < 0 ? -whitened_sum(whitened, slot, (uint32_t)-slot) : whitened_sum(whitened, 0, (uint32_t)slot);
     return trigger->energy + sum * trigger->setup.slot_frames * trigger->setup.frames_per_frame;
 }
 
@@ -356,11 +345,11 @@ static void complete(struct trigger *trigger, int64_t slot, const float *band, c
     rejections[REJECT_TOO_LONG] += too_long;
     rejections[REJECT_BROADBAND] += broadband;
     double arrival = (double)trigger->n_slots + arrival_slot(trigger, band, slot);
-    double frames = arrival * setup->slot_frames - bands_get_delay(setup->bands, setup->band);
+    double frames = arrival * setup->slot_frames - trigger->delay_frames;
     struct pulse pulse = {
         .frame = frames * setup->frames_per_frame - setup->delay_frames,
         .snr = (trigger->peak_power - trigger->band.mean_pa2) / trigger->band.mean_pa2,
-        .energy = energy_until(trigger, band, trigger->peak),
+        .energy = energy_until(trigger, trigger->peak),
     };
     emit(trigger, &pulse, arrival, too_long || broadband, sink);
 }
@@ -409,37 +398,33 @@ static void step(struct trigger *trigger, int64_t slot, const float *band, const
     }
 }
 
-/* Window means of the block, and the greatest of them. */
-static float sum_windows(struct trigger *trigger, const float *band)
+/* From the parts of the band or, where it has but one, from its guard band on: what lies between the two is
+ * taken to be as steep as the band is. */
+static void find_slope(struct trigger *trigger)
 {
-    const uint32_t n = trigger->setup.block_slots, window = trigger->window;
-    const float scale = 1.0F / (float)window;
-    lanes greatest = {0};
-    for (uint32_t i = 0; i < n; i += 2 * LANES) {
-        lanes first = lanes_load(band + i), second = lanes_load(band + i + LANES);
-        const float *late = band + i;
-        for (uint32_t k = 1; k < window; k++) {
-            late--;
-            first += lanes_load(late);
-            second += lanes_load(late + LANES);
-        }
-        first *= scale;
-        second *= scale;
-        greatest = lanes_greatest(lanes_greatest(first, second), greatest);
-        lanes_store(trigger->sums + i, first);
-        lanes_store(trigger->sums + i + LANES, second);
+    struct noise_density density = whitened_get_density(trigger->whitened, trigger->band.mean_pa2);
+    const struct guard *guard = &trigger->guards[0];
+    if (density.n == 1 && guard->parts.n > 0) {
+        double low = bands_get_edges(trigger->setup.bands, guard->parts.bands[0]).low_hz;
+        double high = bands_get_edges(trigger->setup.bands, guard->parts.bands[guard->parts.n - 1]).high_hz;
+        density.middle_hz[1] = sqrt(low * high);
+        density.pa2_hz[1] = guard->median.mean_pa2 / (high - low);
+        density.n = 2;
     }
-    greatest = lanes_greatest(greatest, __builtin_shufflevector(greatest, greatest, 2, 3, 0, 1));
-    return greatest[0] > greatest[1] ? greatest[0] : greatest[1];
+    trigger->slope_db = noise_density_slope(&density);
+    trigger->band.median_ratio = noise_tables_get_median(&trigger->noise, trigger->slope_db);
 }
 
 void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64_t *rejections)
 {
     const struct trigger_setup *setup = &trigger->setup;
-    const float *band = bands_get_power(setup->bands, setup->band);
+    whitened_push(trigger->whitened);
+    if (trigger->state != SETTLING)
+        find_slope(trigger);
+    const float *band = whitened_get_power(trigger->whitened);
     int64_t n = setup->block_slots;
     trigger->block_slot = trigger->n_slots;
-    float greatest = sum_windows(trigger, band);
+    float greatest = sum_windows(trigger);
     /* Until the background has moved by as much as it can in a block, no window can pass. */
     bool quiet = trigger->state == IDLE && greatest < 0.8 * trigger->threshold * trigger->band.mean_pa2;
     int64_t next = (int64_t)((trigger->window - trigger->n_slots % trigger->window) % trigger->window);
@@ -449,11 +434,11 @@ void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64
             trigger->frozen_slots += trigger->state != IDLE;
         }
         if (slot == next) {
-            learn(trigger, slot, band);
+            learn(trigger, slot);
             next += trigger->window;
         }
     }
-    trigger->energy = energy_until(trigger, band, n);
+    trigger->energy = energy_until(trigger, n);
     trigger->n_slots += setup->block_slots;
     trigger->start -= n;
     trigger->peak -= n;
@@ -473,13 +458,14 @@ double trigger_get_background(const struct trigger *trigger)
 
 double trigger_get_noise_rate(const struct trigger *trigger, double snr)
 {
-    return noise_table_get(&trigger->noise, snr);
+    return noise_tables_get(&trigger->noise, trigger->slope_db, snr);
 }
 
 void trigger_destroy(struct trigger *trigger)
 {
     if (!trigger)
         return;
+    whitened_destroy(trigger->whitened);
     pulse_shaper_destroy(trigger->shaper);
     free(trigger->sums);
     free(trigger);

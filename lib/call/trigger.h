@@ -1,6 +1,7 @@
 /* Finds the pulses of one class in one channel, from the slot powers of its band: an energy detector over the
  * class's pulse_s (Urkowitz, "Energy detection of unknown deterministic signals", Proc. IEEE 55, 1967) with a
- * constant-false-alarm threshold over the running median of its own windows. The median is stepped up or down
+ * constant-false-alarm threshold over the running median of its own windows, in which the parts of a wide
+ * band weigh by how quiet they are (call/whitened.h). The median is stepped up or down
  * by a small ratio with each window that lies above or below it, so that neither a call nor a heavy tail
  * (snapping shrimp) lifts it much; it stands still while a pulse is open.
  *
@@ -20,7 +21,7 @@
 struct pulse {
     double frame;  /* arrival, in frames of the input, counted from the last reset */
     double snr;    /* ratio: mean square over pulse_s where it is greatest, less the background, over the
-                      background's mean square in the band */
+                      background's mean square, in the band as its noise is whitened (call/whitened.h) */
     double energy; /* the band's energy up to the arrival since the last reset, Pa2 times input frames */
     struct pulse_shape shape;
 };
@@ -31,18 +32,17 @@ struct pulse_sink {
 };
 
 #define TRIGGER_GUARDS 2
-#define TRIGGER_NO_GUARD UINT32_MAX
 
 struct trigger_setup {
-    const struct call_class *call_class; /* borrowed */
-    const struct bands *bands;           /* borrowed */
-    uint32_t band;                       /* of the bank */
-    uint32_t guards[TRIGGER_GUARDS];     /* of the bank: guard and upper band; TRIGGER_NO_GUARD where none */
-    double rate_hz;                      /* of the bank */
-    uint32_t slot_frames, block_slots;   /* of the bank; block_slots a multiple of 8, at most 64 */
-    uint32_t history_slots;              /* of the bank: trigger_get_history or more */
-    double frames_per_frame;             /* input frames per frame of the bank (its decimation) */
-    double delay_frames;                 /* input frames by which the bank's input is late */
+    const struct call_class *call_class;      /* borrowed */
+    const struct bands *bands;                /* borrowed */
+    struct band_parts band;                   /* of the bank, its lateness left open */
+    struct band_parts guards[TRIGGER_GUARDS]; /* guard and upper band; likewise; n = 0 where none */
+    double rate_hz;                           /* of the bank */
+    uint32_t slot_frames, block_slots;        /* of the bank; block_slots a multiple of 8, at most 64 */
+    uint32_t history_slots;                   /* of the bank: trigger_get_history or more */
+    double frames_per_frame;                  /* input frames per frame of the bank (its decimation) */
+    double delay_frames;                      /* input frames by which the bank's input is late */
 };
 
 struct trigger;
@@ -63,7 +63,7 @@ void trigger_finish(struct trigger *trigger, const struct pulse_sink *sink);
 double trigger_get_known(const struct trigger *trigger);
 /* Mean square of the band's background, Pa2. */
 double trigger_get_background(const struct trigger *trigger);
-/* Pulses a second that white Gaussian noise gives at this snr (ratio) or more: window_upcrossings. */
+/* Pulses a second that Gaussian noise such as there is gives at this snr (ratio) or more (noise_rate.h). */
 double trigger_get_noise_rate(const struct trigger *trigger, double snr);
 void trigger_destroy(struct trigger *trigger);
 

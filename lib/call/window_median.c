@@ -5,12 +5,11 @@
 
 #define FLOOR_PA2 1e-30 /* below any background: digital silence */
 
-/* Median over mean of chi-square with that many degrees of freedom: Wilson and Hilferty (1931). */
-struct window_median window_median_of(double freedom, double step)
+struct window_median window_median_of(const struct window_statistics *statistics, double step)
 {
     return (struct window_median){.mean_pa2 = FLOOR_PA2,
-                                  .median_ratio = pow(1 - 2 / (9 * freedom), 3),
-                                  .deviation = sqrt(2 / freedom),
+                                  .median_ratio = window_quantile(statistics, 0),
+                                  .deviation = sqrt(2 / statistics->freedom),
                                   .steps = {1 / (1 + step), 1 + step}};
 }
 

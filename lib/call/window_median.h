@@ -3,6 +3,7 @@
 #ifndef CALL_WINDOW_MEDIAN_H
 #define CALL_WINDOW_MEDIAN_H
 
+#include "call/bands.h"
 #include <stdbool.h>
 
 #define WINDOW_MEDIAN_SETTLE 64 /* windows that set the first one */
@@ -15,8 +16,8 @@ struct window_median {
     double steps[2];     /* ratios: down, up */
 };
 
-/* For windows with so many degrees of freedom (bands.h), and steps of 1 + step. */
-struct window_median window_median_of(double freedom, double step);
+/* For windows so distributed (bands.h), and steps of 1 + step. */
+struct window_median window_median_of(const struct window_statistics *statistics, double step);
 /* Forgets the sound: below any background. */
 void window_median_reset(struct window_median *median);
 /* Starts from [WINDOW_MEDIAN_SETTLE] powers of windows, which it sorts. */

@@ -130,10 +130,16 @@ double filter_step(struct filter *filter, double x)
     return x;
 }
 
-double filter_power_response(const struct filter *filter, double frequency_hz, double rate_hz)
+double complex filter_response(const struct filter *filter, double frequency_hz, double rate_hz)
 {
     double complex z_inverse = cexp(-2 * M_PI * frequency_hz / rate_hz * I), response = 1;
     for (uint32_t k = 0; k < filter->n_sections; k++)
         response *= section_response(&filter->sections[k], z_inverse);
+    return response;
+}
+
+double filter_power_response(const struct filter *filter, double frequency_hz, double rate_hz)
+{
+    double complex response = filter_response(filter, frequency_hz, rate_hz);
     return creal(response * conj(response));
 }

@@ -10,6 +10,7 @@
 #define DSP_FILTER_H
 
 #include "base/status.h"
+#include <complex.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -38,7 +39,8 @@ enum status filter_band_pass(uint32_t order, double low_hz, double high_hz, doub
 void filter_reset(struct filter *filter);
 /* The next output for the next input. */
 double filter_step(struct filter *filter, double x);
-/* Magnitude squared of the response at a frequency. */
+/* The response at a frequency (a delay turns it by a negative angle), and its magnitude squared. */
+double complex filter_response(const struct filter *filter, double frequency_hz, double rate_hz);
 double filter_power_response(const struct filter *filter, double frequency_hz, double rate_hz);
 
 #endif

@@ -197,15 +197,18 @@ static void hear_all(bool one_pulse, double least)
     assert_non_null(path);
     load_class();
     int n_codas = load(path), n_pairs = 0, clicks = 0, in_trains = 0, right = 0;
-    struct band_edges edges[] = {{coda_class.low_hz, coda_class.high_hz},
-                                 {coda_class.train.guard_low_hz, coda_class.train.guard_high_hz}};
+    struct band_edges edges[] = {
+        {coda_class.low_hz, 2 * coda_class.low_hz}, /* in parts, as call/pulses has it */
+        {2 * coda_class.low_hz, coda_class.high_hz},
+        {coda_class.train.guard_low_hz, coda_class.train.guard_high_hz}};
     struct bands *bands;
     struct trigger *trigger;
     uint32_t history = trigger_get_history(&coda_class, RATE, 2);
-    assert_int_equal(bands_create(RATE, edges, 2, 2, 64, history, &bands), STATUS_OK);
+    assert_int_equal(bands_create(RATE, edges, 3, 2, 64, history, &bands), STATUS_OK);
     struct trigger_setup setup = {.call_class = &coda_class,
                                   .bands = bands,
-                                  .guards = {1, TRIGGER_NO_GUARD},
+                                  .band = {.n = 2, .bands = {0, 1}},
+                                  .guards = {{.n = 1, .bands = {2}}},
                                   .rate_hz = RATE,
                                   .slot_frames = 2,
                                   .block_slots = 64,

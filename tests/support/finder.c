@@ -11,18 +11,25 @@ static enum status create_parts(struct finder *finder, const struct call_class *
 {
     const struct train_shape *shape = &call_class->train;
     uint32_t slot = (uint32_t)fmax(1, round(shape->pulse_s * rate_hz / 6));
-    struct band_edges edges[2] = {{call_class->low_hz, call_class->high_hz},
-                                  {shape->guard_low_hz, shape->guard_high_hz}};
-    struct trigger_setup setup = {
-        .call_class = call_class,
-        .guards = {shape->guard_high_hz > 0 ? 1 : TRIGGER_NO_GUARD, TRIGGER_NO_GUARD},
-        .history_slots = trigger_get_history(call_class, rate_hz, slot),
-        .rate_hz = rate_hz,
-        .slot_frames = slot,
-        .block_slots = BLOCK_SLOTS,
-        .frames_per_frame = 1};
-    enum status status = bands_create(rate_hz, edges, shape->guard_high_hz > 0 ? 2 : 1, slot, BLOCK_SLOTS,
-                                      trigger_get_history(call_class, rate_hz, slot), &finder->bands);
+    double ratio = call_class->high_hz / call_class->low_hz, middle = call_class->low_hz * sqrt(ratio);
+    bool wide = ratio >= 3,
+         guarded = shape->guard_high_hz > 0; /* heard in two parts, as call/pulses has it */
+    struct band_edges edges[3] = {{call_class->low_hz, wide ? middle : call_class->high_hz}};
+    uint32_t n = 1;
+    if (wide)
+        edges[n++] = (struct band_edges){middle, call_class->high_hz};
+    if (guarded)
+        edges[n++] = (struct band_edges){shape->guard_low_hz, shape->guard_high_hz};
+    struct trigger_setup setup = {.call_class = call_class,
+                                  .band = {.n = wide ? 2 : 1, .bands = {0, 1}},
+                                  .guards = {{.n = guarded, .bands = {n - 1}}},
+                                  .history_slots = trigger_get_history(call_class, rate_hz, slot),
+                                  .rate_hz = rate_hz,
+                                  .slot_frames = slot,
+                                  .block_slots = BLOCK_SLOTS,
+                                  .frames_per_frame = 1};
+    enum status status =
+        bands_create(rate_hz, edges, n, slot, BLOCK_SLOTS, setup.history_slots, &finder->bands);
     setup.bands = finder->bands;
     if (status == STATUS_OK)
         status = trigger_create(&setup, &finder->trigger);
