@@ -9,10 +9,8 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define SLOTS_PER_PULSE                                                                                      \
-    6                  /* of the shortest pulse of a stage: costs less than 0.1 dB against every sample      \
-                        */
-#define BLOCK_SLOTS 64 /* looked at together, where they last no longer ... */
+#define SLOTS_PER_PULSE 6    /* of the shortest of a stage: costs under 0.1 dB against every sample */
+#define BLOCK_SLOTS 64       /* looked at together, where they last no longer ... */
 #define LONGEST_BLOCK_S 0.01 /* ... than this; else: */
 #define SLOW_BLOCK_SLOTS 8
 /* A class runs decimated when its highest edge is at most rate / 16, at a rate of at least 4.8 times that
