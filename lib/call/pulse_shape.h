@@ -59,7 +59,8 @@ void pulse_shape_centre(struct pulse_shape *shape);
 
 /* Logarithm of how much likelier two pulses look so if one animal made both than if two animals, or chance,
  * did: spectra within 3 dB of each other against within 7 dB, envelopes of like autocorrelation against
- * unlike. At most some 5; without a lower limit. */
+ * unlike. At most PULSE_SHAPE_MOST; without a lower limit. */
+#define PULSE_SHAPE_MOST 8.0
 double pulse_shape_likeness(const struct pulse_shape *a, const struct pulse_shape *b);
 
 #endif

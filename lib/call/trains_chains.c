@@ -31,6 +31,24 @@ static void keep(struct node *node, const struct link *link)
     node->links[place] = *link;
 }
 
+/* Adds what the two pulses look like to a link, and takes it. Only what speaks against a pair counts in the
+ * score: no factor above 1 that chance could earn. */
+static void look_and_keep(struct node *node, const struct node *from, struct link *link)
+{
+    bool full = node->n_links == LINKS;
+    for (uint32_t i = 0; i < LINKS && full; i++)
+        full = node->links[i].rank >= link->rank + PULSE_SHAPE_MOST;
+    if (full)
+        return; /* however alike they are, it would not be kept */
+    double likeness = pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape);
+    link->alike += fmax(0, likeness);
+    link->gain += fmin(0, likeness);
+    link->score[NARROW] += fmin(0, likeness);
+    link->score[WIDE] += fmin(0, likeness);
+    link->rank += likeness;
+    keep(node, link);
+}
+
 static double ln_density(const struct trains *trains, int spread, double d)
 {
     double scaled = d / trains->deviation[spread];
@@ -47,7 +65,7 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
 }
 
 /* A chain of two pulses. */
-static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score, double alike,
+static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score,
                               double ln_rate)
 {
     return (struct link){.previous = number,
@@ -59,8 +77,7 @@ static struct link first_pair(uint64_t number, double time_s, double ln_interval
                          .gain = score,
                          .score = {score, score},
                          .ln_rates = ln_rate,
-                         .alike = alike,
-                         .rank = score + alike - ln_rate};
+                         .rank = score - ln_rate};
 }
 
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
@@ -70,13 +87,10 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     const struct node *from = trains_node(trains, number);
     double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
     double ln_interval = log(interval);
-    double likeness = pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape), alike = fmax(0, likeness);
-    /* Only what speaks against a pair counts in the score: no factor above 1 that chance could earn. */
-    double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB) - fmin(0, likeness);
+    double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
     if (interval <= shape->max_interval_s && from->owner == 0)
-        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - cost, alike,
-                          ln_rate);
+        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - cost, ln_rate);
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
         if (from->owner && link->train != from->owner)
@@ -91,7 +105,7 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
         double common = trains->ln_steps[m] - ln_interval - cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
         double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
-        double rank = fmax(score[NARROW], score[WIDE]) + link->alike + alike - link->ln_rates - ln_rate;
+        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - ln_rate;
         if (rank <= best.rank)
             continue;
         best = (struct link){.previous = number,
@@ -106,11 +120,11 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .gain = fmax(gain[NARROW], gain[WIDE]),
                              .score = {score[NARROW], score[WIDE]},
                              .ln_rates = link->ln_rates + ln_rate,
-                             .alike = link->alike + alike,
+                             .alike = link->alike,
                              .rank = rank};
     }
     if (best.rank > -INFINITY)
-        keep(node, &best);
+        look_and_keep(node, from, &best);
 }
 
 uint32_t trains_walk(struct trains *trains, uint64_t number, uint32_t link, uint64_t until, uint32_t most)

@@ -1,5 +1,4 @@
 /* Whether a chain of pulses is more than chance. */
-#include "base/median.h"
 #include "base/units.h"
 #include "call/trains_inside.h"
 #include <math.h>
@@ -8,10 +7,14 @@
 
 /* Pulses that compete with a chain: within its time all that are not its own; before, all of no train (a
  * train that was given is no chance). */
-struct competitors {
-    uint32_t n;    /* levels, sorted, in competing[] */
-    double time_s; /* over which they were counted */
+struct competitors { /* counted in competing[] */
+    double time_s;   /* over which they were counted */
 };
+
+static uint32_t competing_step(double level_db)
+{
+    return (uint32_t)fmin(COMPETING_STEPS - 1, fmax(0, level_db / COMPETING_STEP_DB));
+}
 
 static struct competitors gather_competitors(struct trains *trains, uint32_t n)
 {
@@ -22,6 +25,10 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
     uint32_t member = 0;
     const struct node *one = trains_node(trains, trains->members[0]);
     const struct node *other = trains_node(trains, trains->members[n / 2]);
+    double least_db = INFINITY;
+    for (uint32_t i = 0; i < n; i++)
+        least_db = fmin(least_db, trains_node(trains, trains->members[i])->level_db - LEVEL_STEP_DB);
+    memset(trains->competing, 0, sizeof trains->competing);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1) && reached <= span; k--) {
         const struct node *node = trains_node(trains, k - 1);
         reached = end - node->time_s;
@@ -29,29 +36,17 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
         if (member < n && trains->members[member] == k - 1) {
             member++;
         } else if (node->owner != HIDDEN && reached <= span && (within || node->owner == 0) &&
+                   node->level_db > least_db &&
                    (trains_may_be_one(node, one) || trains_may_be_one(node, other))) {
-            trains->competing[found.n++] = node->level_db;
+            trains->competing[competing_step(node->level_db)]++;
         }
     }
-    qsort(trains->competing, found.n, sizeof *trains->competing, median_compare);
+    for (uint32_t i = COMPETING_STEPS - 1; i > 0; i--)
+        trains->competing[i - 1] += trains->competing[i];
     if (trains->n_pulses <= RING)
         reached = end; /* nothing is forgotten: the time before the first pulse was heard too */
     found.time_s = fmax(fmin(reached, span), trains->call_class.train.max_interval_s);
     return found;
-}
-
-/* How many of the n sorted values are above a limit. */
-static uint32_t count_above(const double *sorted, uint32_t n, double limit)
-{
-    uint32_t low = 0, high = n;
-    while (low < high) {
-        uint32_t middle = (low + high) / 2;
-        if (sorted[middle] > limit)
-            high = middle;
-        else
-            low = middle + 1;
-    }
-    return n - low;
 }
 
 /* Score of the chain in members[0..n) as if it began there, however long it is, for the better of the two
@@ -80,7 +75,7 @@ static double competing_strays(const struct trains *trains, const struct node *n
     double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
     double noise =
         fmin(trains_noise_rate(trains, least_snr), trains_noise_rate(trains, units_power_ratio(limit_db)));
-    double around = count_above(trains->competing, found->n, limit_db);
+    double around = trains->competing[competing_step(limit_db)];
     double excess = fmax(0, around - noise * found->time_s);
     return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s;
 }

@@ -17,9 +17,11 @@
 #define JUDGED_PULSES 64     /* the last ones of a chain decide whether it is a train */
 #define LEVELS 24            /* steps of 3 dB in which pulses are counted */
 #define LEVEL_STEP_DB 3
-#define RATE_FLOOR 0.01   /* stray pulses a second that are expected everywhere; a judgement, no source */
-#define RATE_INTERVALS 20 /* longest intervals over which the rate of stray pulses is counted */
-#define UNLIKE -2.0       /* pulse_shape_likeness; a judgement, no source */
+#define RATE_FLOOR 0.01     /* stray pulses a second that are expected everywhere; a judgement, no source */
+#define RATE_INTERVALS 20   /* longest intervals over which the rate of stray pulses is counted */
+#define COMPETING_STEPS 128 /* of COMPETING_STEP_DB, from 0 dB */
+#define COMPETING_STEP_DB 0.5
+#define UNLIKE -2.0 /* pulse_shape_likeness; a judgement, no source */
 #define HIDDEN UINT32_MAX
 
 /* A train is either steady or free in its rhythm; a chain is scored as both. */
@@ -77,7 +79,8 @@ struct trains {
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
-    double competing[RING], sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
+    uint32_t competing[COMPETING_STEPS]; /* strays by level, each step with those above it */
+    double sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
 };
 
