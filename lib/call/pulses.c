@@ -14,7 +14,7 @@
 #define LONGEST_BLOCK_S 0.01 /* ... than this; else: */
 #define SLOW_BLOCK_SLOTS 8
 /* A class runs decimated when its highest edge is at most rate / 16, at a rate of at least 4.8 times that
- * edge. Above 320 kHz that leaves four bands at the full rate, as many as one vector of filters holds. */
+ * edge. */
 #define DECIMATE_BELOW 16
 #define DECIMATED_RATE 4.8
 #define PIECE_FRAMES 1024 /* pushed to a decimator at a time */

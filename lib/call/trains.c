@@ -146,8 +146,12 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
         rejections[REJECT_TOO_MANY]++;
         return;
     }
-    *open = (struct open_train){
-        .number = ++trains->n_trains, .last = number, .last_link = best, .evidence = MOST_EVIDENCE};
+    *open = (struct open_train){.number = ++trains->n_trains,
+                                .last = number,
+                                .last_link = best,
+                                .evidence = MOST_EVIDENCE,
+                                .best = number,
+                                .best_link = best};
     open->given = trains->members[n - 1] - 1; /* wraps to "none" before the very first pulse */
     link->train = open->number;
     give(trains, open, sink, rejections);
@@ -156,6 +160,8 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
 static void end_train(struct trains *trains, struct open_train *open, const struct train_sink *sink,
                       uint64_t *rejections)
 {
+    open->last = open->best;
+    open->last_link = open->best_link;
     uint32_t n = trains_walk(trains, open->last, open->last_link, open->given, TRAINS_MAX_MEMBERS);
     if (n >= MIN_PIECE)
         give(trains, open, sink, rejections);
@@ -210,6 +216,12 @@ static void lengthen(struct trains *trains, struct open_train *open, uint32_t li
     }
     open->last = number;
     open->last_link = link;
+    open->total += gain;
+    if (open->total >= open->best_total) {
+        open->best_total = open->total;
+        open->best = number;
+        open->best_link = link;
+    }
     claim(trains, open);
     double piece_s = fmax(PIECE_S, PIECE_INTERVALS * trains->call_class.train.max_interval_s);
     if (node->time_s - open->given_time_s >= piece_s || number - open->given >= PIECE_PULSES)

@@ -59,8 +59,11 @@ struct open_train {
     uint32_t last_link;
     uint64_t given; /* last pulse that was given */
     double given_time_s;
-    double strays, strays_s; /* that came between its last pulses, and in what time; fading */
-    double evidence;         /* running, of its last steps: below 0 the rhythm is lost (Page 1954) */
+    double strays, strays_s;  /* that came between its last pulses, and in what time; fading */
+    double evidence;          /* running, of its last steps: below 0 the rhythm is lost (Page 1954) */
+    double total, best_total; /* the same without limits, and where it was greatest: */
+    uint64_t best;            /* pulse and link there: what follows, if the train ends, was chance */
+    uint32_t best_link;
     bool machine;
 };
 
