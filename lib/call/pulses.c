@@ -13,8 +13,7 @@
 #define BLOCK_SLOTS 64       /* looked at together, where they last no longer ... */
 #define LONGEST_BLOCK_S 0.01 /* ... than this; else: */
 #define SLOW_BLOCK_SLOTS 8
-/* A class runs decimated when its highest edge is at most rate / 16, at a rate of at least 4.8 times that
- * edge. */
+/* A class with a highest edge of at most rate / 16 runs decimated, at 4.8 times that edge or more. */
 #define DECIMATE_BELOW 16
 #define DECIMATED_RATE 4.8
 #define PIECE_FRAMES 1024 /* pushed to a decimator at a time */

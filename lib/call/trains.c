@@ -139,7 +139,8 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
     double jitter = trains_walked_jitter(trains, n);
     if (jitter > shape->max_jitter || (jitter < shape->min_jitter && n < MACHINE_PULSES))
         return;
-    if (!trains_are_certain(trains, n))
+    n = trains_find_certain(trains, n, shape->min_pulses + hidden);
+    if (n == 0)
         return;
     struct open_train *open = free_place(trains);
     if (!open) {

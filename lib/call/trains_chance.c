@@ -80,22 +80,30 @@ static double competing_strays(const struct trains *trains, const struct node *n
     return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s;
 }
 
-/* Whether the chain in members[0..n) is more than chance. */
-bool trains_are_certain(struct trains *trains, uint32_t n)
+/* The ratio of the chain is held against how often pulses such as its first come; of one that stands, the
+ * earliest pulses may be chance that happened to lead to it, so it is given from where it stands best. */
+uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 {
-    double ratio = walked_score(trains, n), first = 0;
+    double rates = 0, best = 0, false_s = 3600 / trains->call_class.false_per_hour;
     double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
     struct competitors found = gather_competitors(trains, n);
+    uint32_t surest = 0;
+    bool whole = false;
     for (uint32_t i = 0; i < n; i++) {
         const struct node *node = trains_node(trains, trains->members[i]);
         double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, LEVEL_DEVIATION_DB);
         double rate = competing_strays(trains, node, &found, n) + noise + RATE_FLOOR;
-        if (i + 1 < n)
-            ratio -= log(rate);
-        else
-            first = rate;
+        if (i + 1 >= least && i > 0) {
+            double over = walked_score(trains, i + 1) - rates - log(false_s * rate);
+            whole = over > 0; /* at last, of all */
+            if (over > best) {
+                best = over;
+                surest = i + 1;
+            }
+        }
+        rates += log(rate);
     }
-    return ratio > log(3600 * first / trains->call_class.false_per_hour);
+    return whole ? surest : 0;
 }
 
 bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link)

@@ -122,7 +122,8 @@ int trains_level_index(const struct node *node);
 /* trains_chance.c: spares most chains the walk: false when a rate of stray pulses that is surely too low
  * would not do. */
 bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link);
-/* Whether the chain in members[0..n) is more than chance. Uses competing[]. */
-bool trains_are_certain(struct trains *trains, uint32_t n);
+/* How many of the chain in members[0..n), the last first and `least` or more, are most surely more than
+ * chance; 0 where they are not. Uses competing[]. */
+uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least);
 
 #endif
