@@ -15,6 +15,8 @@
 #define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
 #define FAR_WEAKER 0.01
 #define ECHO_S 0.5
+#define LEAST_MULTIPLE 1.4 /* any ratio below it rounds to 1 */
+#define NEAR_HZ 0.01       /* more than what is lost where a frequency is kept as a float */
 
 double related_duration(const struct contour *c)
 {
@@ -39,67 +41,102 @@ static double hz_at(const struct contour *c, double frame)
     return c->hz[i] + (x - i) * (c->hz[i + 1] - c->hz[i]);
 }
 
-/* Share of the common time in which the frequencies stand as i to j, within the tolerance. */
-static double share_in_ratio(const struct contour *a, const struct contour *b, double ratio, double error,
-                             double tolerance_hz)
+/* The frequencies of two contours over the time that they have in common. */
+struct common {
+    double a[TRACE_POINTS], b[TRACE_POINTS];
+};
+
+/* As hz_at, at the middles of equal parts of a time within the contour. */
+static void sample(const struct contour *c, double start, double length, double out[TRACE_POINTS])
 {
-    double start = fmax(a->start_frame, b->start_frame), length = related_overlap(a, b);
+    const double points = (TRACE_POINTS - 1) / related_duration(c), step = length / TRACE_POINTS * points;
+    const double first = (start - c->start_frame) * points + step / 2;
+    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
+        double x = first + i * step;
+        x = x > 0 ? x : 0;
+        x = x < TRACE_POINTS - 1 ? x : TRACE_POINTS - 1;
+        const int at = x < TRACE_POINTS - 2 ? (int)x : TRACE_POINTS - 2;
+        out[i] = c->hz[at] + (x - at) * (c->hz[at + 1] - c->hz[at]);
+    }
+}
+
+static void sample_common(const struct contour *a, const struct contour *b, struct common *out)
+{
+    const double start = fmax(a->start_frame, b->start_frame), length = related_overlap(a, b);
+    sample(a, start, length, out->a);
+    sample(b, start, length, out->b);
+}
+
+/* Share of the common time in which the frequencies stand as ratio to 1, within the tolerance. */
+static double share_in_ratio(const struct common *common, double ratio, double error, double tolerance_hz)
+{
     uint32_t good = 0;
     for (uint32_t i = 0; i < TRACE_POINTS; i++) {
-        double frame = start + length * (i + 0.5) / TRACE_POINTS;
-        double wanted = ratio * hz_at(b, frame);
-        good += fabs(hz_at(a, frame) - wanted) < error * wanted + tolerance_hz;
+        const double wanted = ratio * common->b[i];
+        good += fabs(common->a[i] - wanted) < error * wanted + tolerance_hz;
     }
     return good / (double)TRACE_POINTS;
 }
 
-/* Mean ratio over the common time. */
-static double ratio_of(const struct contour *a, const struct contour *b)
+/* Mean ratio over the common time, by its logarithm; eight ratios are multiplied before one is taken. */
+static double ratio_of(const struct common *common)
 {
-    double start = fmax(a->start_frame, b->start_frame), length = related_overlap(a, b), sum = 0;
-    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
-        double frame = start + length * (i + 0.5) / TRACE_POINTS;
-        sum += log(hz_at(a, frame) / hz_at(b, frame));
+    double sum = 0;
+    for (uint32_t i = 0; i < TRACE_POINTS; i += 8) {
+        double product = 1;
+        for (uint32_t j = i; j < i + 8; j++)
+            product *= common->a[j] / common->b[j];
+        sum += log(product);
     }
     return exp(sum / TRACE_POINTS);
 }
 
 /* Share of the common time in which they keep their mean ratio; none where it is higher than overtones go. */
-static double share_kept(const struct contour *a, const struct contour *b, double error)
+static double share_kept(const struct contour *a, const struct contour *b, const struct common *common,
+                         double error)
 {
-    double ratio = ratio_of(a, b);
+    double ratio = ratio_of(common);
     if (ratio > HIGHEST_OVERTONE || ratio < 1 / HIGHEST_OVERTONE)
         return 0;
-    return share_in_ratio(a, b, ratio, error, fmax(a->bin_hz, ratio * b->bin_hz) / 2);
+    return share_in_ratio(common, ratio, error, fmax(a->bin_hz, ratio * b->bin_hz) / 2);
 }
 
 /* How far it goes in the common time, as a share of its frequency. */
-static double sweep_within(const struct contour *c, const struct contour *other)
+static double sweep_within(const struct contour *c, const double hz[TRACE_POINTS])
 {
-    double start = fmax(c->start_frame, other->start_frame), length = related_overlap(c, other);
-    double low = INFINITY, high = 0;
-    for (uint32_t i = 0; i < TRACE_POINTS; i++) {
-        double hz = hz_at(c, start + length * (i + 0.5) / TRACE_POINTS);
-        low = fmin(low, hz);
-        high = fmax(high, hz);
+    double low = hz[0], high = hz[0];
+    for (uint32_t i = 1; i < TRACE_POINTS; i++) {
+        low = hz[i] < low ? hz[i] : low;
+        high = hz[i] > high ? hz[i] : high;
     }
     return high - low > 4 * c->bin_hz ? (high - low) / high : 0;
 }
 
-bool related_is_same_line(const struct contour *a, const struct contour *b)
+/* Whether it could sweep enough in any part of it: cheap, before the course is looked at. */
+static bool may_sweep(const struct contour *c)
 {
-    return related_overlap(a, b) >= 0.3 * shorter(a, b) &&
-           share_in_ratio(a, b, 1, 0, 2.5 * fmax(a->bin_hz, b->bin_hz)) >= MOSTLY;
+    const double extent = c->high_hz - c->low_hz + NEAR_HZ;
+    return extent > 4 * c->bin_hz && extent >= SWEEPS * c->high_hz;
 }
 
-/* Near a low multiple of the other most of the time, though it may go from one to the next. */
-static bool keeps_to_multiples(const struct contour *high, const struct contour *low)
+bool related_is_same_line(const struct contour *a, const struct contour *b)
 {
-    double start = fmax(high->start_frame, low->start_frame), length = related_overlap(high, low);
+    const double tolerance_hz = 2.5 * fmax(a->bin_hz, b->bin_hz), apart_hz = tolerance_hz + NEAR_HZ;
+    if (related_overlap(a, b) < 0.3 * shorter(a, b) || a->low_hz > b->high_hz + apart_hz ||
+        b->low_hz > a->high_hz + apart_hz)
+        return false;
+    struct common common;
+    sample_common(a, b, &common);
+    return share_in_ratio(&common, 1, 0, tolerance_hz) >= MOSTLY;
+}
+
+/* a is near a low multiple of b most of the time, though it may go from one to the next. */
+static bool keeps_to_multiples(const struct common *common)
+{
     uint32_t good = 0;
     for (uint32_t i = 0; i < TRACE_POINTS; i++) {
-        double frame = start + length * (i + 0.5) / TRACE_POINTS;
-        double ratio = hz_at(high, frame) / hz_at(low, frame), whole = round(ratio);
+        const double ratio = common->a[i] / common->b[i];
+        const int whole = ratio < LOW_MULTIPLES + 1 ? (int)(ratio + 0.5) : 0;
         good += whole >= 2 && whole <= LOW_MULTIPLES && fabs(ratio - whole) < APART_ERROR * whole;
     }
     return good >= APART_MOSTLY * TRACE_POINTS;
@@ -111,29 +148,43 @@ bool related_is_harmonic(const struct contour *a, const struct contour *b)
         return false;
     const struct contour *high = a->hz[TRACE_POINTS / 2] > b->hz[TRACE_POINTS / 2] ? a : b;
     const struct contour *low = high == a ? b : a;
+    const bool sweep = may_sweep(a) && may_sweep(b);
+    if (!sweep && high->high_hz < LEAST_MULTIPLE * low->low_hz)
+        return false; /* nowhere near twice the other */
     double middle = fmax(a->start_frame, b->start_frame) + related_overlap(a, b) / 2;
     double ratio = round(hz_at(high, middle) / hz_at(low, middle));
+    struct common common;
+    sample_common(high, low, &common);
     if (ratio >= 2 && ratio <= MAX_HARMONIC &&
-        share_in_ratio(high, low, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY)
+        share_in_ratio(&common, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY)
         return true;
-    if (keeps_to_multiples(high, low))
+    if (keeps_to_multiples(&common))
         return true;
-    return sweep_within(a, b) >= SWEEPS && sweep_within(b, a) >= SWEEPS &&
-           share_in_ratio(high, low, ratio_of(high, low), HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY;
+    return sweep && sweep_within(high, common.a) >= SWEEPS && sweep_within(low, common.b) >= SWEEPS &&
+           share_in_ratio(&common, ratio_of(&common), HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY;
 }
 
 bool related_is_apart(const struct contour *a, const struct contour *b)
 {
-    return sweep_within(a, b) >= SWEEPS && sweep_within(b, a) >= SWEEPS &&
-           share_kept(a, b, APART_ERROR) < APART_MOSTLY;
+    if (!may_sweep(a) || !may_sweep(b))
+        return false;
+    struct common common;
+    sample_common(a, b, &common);
+    return sweep_within(a, common.a) >= SWEEPS && sweep_within(b, common.b) >= SWEEPS &&
+           share_kept(a, b, &common, APART_ERROR) < APART_MOSTLY;
 }
 
 /* It sweeps, and not as the other does (which may stand still), and lies so far above that it is not a path
  * from one of its first harmonics to the next. */
 static bool has_own_course(const struct contour *c, const struct contour *other)
 {
-    return related_overlap(c, other) > 0 && sweep_within(c, other) >= SWEEPS &&
-           ratio_of(c, other) > FIRST_HARMONICS && share_kept(c, other, APART_ERROR) < APART_MOSTLY;
+    if (related_overlap(c, other) <= 0 || !may_sweep(c) ||
+        c->high_hz + NEAR_HZ < FIRST_HARMONICS * (other->low_hz - NEAR_HZ))
+        return false;
+    struct common common;
+    sample_common(c, other, &common);
+    return sweep_within(c, common.a) >= SWEEPS && ratio_of(&common) > FIRST_HARMONICS &&
+           share_kept(c, other, &common, APART_ERROR) < APART_MOSTLY;
 }
 
 bool related_is_overtone(double rate_hz, const struct contour *weak, const struct contour *strong)
