@@ -8,10 +8,10 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define SLICE_S 0.01     /* tracers and judge meet this often, at fixed frames: chunks cannot matter */
-#define CARRIED 0.46     /* of the rate: the band that a recording holds */
-#define HEADROOM 8.0     /* of a path's score over the threshold */
-#define MOST_PA 1e6F     /* 240 dB re 1 uPa: more is a fault of the input, and would overflow a power */
+#define SLICE_S 0.01    /* tracers and judge meet this often, at fixed frames: chunks cannot matter */
+#define CARRIED 0.46    /* of the rate: the band that a recording holds */
+#define HEADROOM 8.0    /* of a path's score over the threshold */
+#define MOST_PA 1e6F    /* 240 dB re 1 uPa: more is a fault of the input, and would overflow a power */
 #define TAIL_HEARD 2.0F /* over the quietest time: 3 dB */
 #define MAX_OPEN 96
 #define MAX_BANDS 16
@@ -90,6 +90,8 @@ static void gather(struct tones *tones, double window_s, struct tracer_setup *se
         setup->max_rate_hz_s = fmax(setup->max_rate_hz_s, class->tone.max_rate_hz_s);
         setup->max_s = fmax(setup->max_s, class->tone.max_s);
         setup->delay_s = first ? class->natural_delay_s : fmin(setup->delay_s, class->natural_delay_s);
+        setup->tells_sidebands =
+            setup->tells_sidebands || class->tone.min_sideband_hz > 0 || class->tone.max_sideband_hz > 0;
         first = false;
     }
     setup->factor = 1;

@@ -34,6 +34,13 @@ static double refine_hz(const struct tracer *tracer, const float *power, uint32_
     return (tracer->first_bin + k + shift) * tracer->bin_hz;
 }
 
+static void refine_trail(struct tracer *tracer, uint64_t last, uint32_t n)
+{
+    for (uint32_t i = 0; i < n; i++)
+        tracer->trail_hz[i] =
+            refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+}
+
 /* Mean power of the cells beside the tone's, on both sides where the band has them. */
 static double power_beside(const struct tracer *tracer, const float *power, uint32_t k)
 {
@@ -127,11 +134,11 @@ static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n
 }
 
 /* How far the course is from a straight line, and how it jumps. */
-static void measure_smoothness(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+static void measure_smoothness(const struct tracer *tracer, uint32_t n, struct contour *out)
 {
     double sx = 0, sy = 0, sxx = 0, sxy = 0, syy = 0, jumps = 0, before[2] = {0, 0};
     for (uint32_t i = 0; i < n; i++) {
-        double hz = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        const double hz = tracer->trail_hz[i];
         double x = i - (n - 1) / 2.0, y = hz - tracer->first_bin * tracer->bin_hz, second;
         sx += x;
         sy += y;
@@ -148,12 +155,12 @@ static void measure_smoothness(const struct tracer *tracer, uint64_t last, uint3
     out->jump_hz = n > 2 ? jumps / (n - 2) : 0;
 }
 
-static void measure_shape(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
+static void measure_shape(const struct tracer *tracer, uint32_t n, struct contour *out)
 {
     double low = INFINITY, high = 0, ends[2] = {0, 0};
     uint32_t share = n / 8 + 1;
     for (uint32_t i = 0; i < n; i++) {
-        double hz = refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        const double hz = tracer->trail_hz[i];
         low = fmin(low, hz);
         high = fmax(high, hz);
         ends[0] += i >= n - share ? hz / share : 0;
@@ -161,8 +168,7 @@ static void measure_shape(const struct tracer *tracer, uint64_t last, uint32_t n
     }
     for (uint32_t p = 0; p < TRACE_POINTS; p++) {
         uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
-        out->hz[p] =
-            (float)refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+        out->hz[p] = (float)tracer->trail_hz[i];
     }
     out->low_hz = low;
     out->high_hz = high;
@@ -202,7 +208,8 @@ bool contour_is_flat(const struct contour *contour)
     const double high = contour->high_hz, extent = high - contour->low_hz;
     const double flat_hz =
         fmax(FLAT_BINS * contour->bin_hz, high * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
-    return extent <= flat_hz || (fabs(contour->sweep_hz) <= flat_hz && contour->bend_hz <= 2 * contour->bin_hz);
+    return extent <= flat_hz ||
+           (fabs(contour->sweep_hz) <= flat_hz && contour->bend_hz <= 2 * contour->bin_hz);
 }
 
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
@@ -215,10 +222,11 @@ void contour_trace(struct tracer *tracer, const struct path *path, bool whole, s
     out->seconds = (out->end_frame - out->start_frame) / tracer->setup.rate_hz;
     if (whole) {
         out->remains = measure_remains(tracer, last, n);
-        out->sideband_hz = contour_sideband_hz(tracer, last, n);
+        out->sideband_hz = tracer->setup.tells_sidebands ? contour_sideband_hz(tracer, last, n) : 0;
+        refine_trail(tracer, last, n);
         measure_cells(tracer, last, n, out);
-        measure_shape(tracer, last, n, out);
-        measure_smoothness(tracer, last, n, out);
+        measure_shape(tracer, n, out);
+        measure_smoothness(tracer, n, out);
     } else
         measure_course(tracer, last, n, out);
 }

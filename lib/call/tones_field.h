@@ -77,7 +77,8 @@ struct tracer {
     double *centre;       /* [n_history]: input frame of each frame's middle */
     int8_t *history_step; /* [n_history][stride] */
     float *history_power, *history_snr;
-    uint32_t *trail; /* [n_history]: bins of the path being traced back, the last first */
+    uint32_t *trail;  /* [n_history]: bins of the path being traced back, the last first ... */
+    double *trail_hz; /* ... and their refined frequencies */
 };
 
 static inline uint32_t tracer_row(const struct tracer *tracer, uint64_t frame)

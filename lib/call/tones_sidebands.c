@@ -10,29 +10,47 @@
 #define LEAST_LEVEL 0.3F /* ln over the background's mean; noise alone lies at -0.58 */
 #define OF_MAIN (-3.0F)  /* ln: at most 13 dB below the contour's own line */
 
+/* Sums of logarithms, by products: a logarithm is taken only where the product could overflow. */
+struct log_sum {
+    double product, sum;
+    uint32_t count;
+};
+
+static inline void add_log(struct log_sum *to, double x)
+{
+    to->product *= x;
+    to->count++;
+    if (to->product > 1e200 || to->product < 1e-200) {
+        to->sum += log(to->product);
+        to->product = 1;
+    }
+}
+
 /* Mean of ln(power / background) over the contour's frames at offsets from it, [-MOST_BINS..MOST_BINS]; the
  * offsets grow with its frequency, as those of harmonics do. NAN where the band ends in more than half of the
  * frames. */
 static void profile(const struct tracer *tracer, uint64_t last, uint32_t n, float *out)
 {
-    double sum[2 * MOST_BINS + 1] = {0}, middle = 0;
-    uint32_t count[2 * MOST_BINS + 1] = {0};
+    struct log_sum sums[2 * MOST_BINS + 1];
+    double middle = 0;
+    for (int d = 0; d <= 2 * MOST_BINS; d++)
+        sums[d] = (struct log_sum){.product = 1};
     for (uint32_t i = 0; i < n; i++)
         middle += (double)(tracer->first_bin + tracer->trail[i]) / n;
     for (uint32_t i = 0; i < n; i++) {
         const float *snr = tracer->history_snr + (size_t)tracer_row(tracer, last - i) * tracer->stride;
-        const int at = (int)tracer->trail[i];
+        const int at = (int)tracer->trail[i], n_bins = (int)tracer->n_bins;
         const double scale = (tracer->first_bin + tracer->trail[i]) / middle;
-        for (int d = -MOST_BINS; d <= MOST_BINS; d++) {
-            const int k = at + (int)lround(d * scale);
-            if (k < 0 || k >= (int)tracer->n_bins)
-                continue;
-            sum[d + MOST_BINS] += log((double)snr[k] + 1e-6);
-            count[d + MOST_BINS]++;
+        for (int d = 0; d <= MOST_BINS; d++) {
+            const int offset = (int)(d * scale + 0.5);
+            if (at + offset < n_bins)
+                add_log(&sums[MOST_BINS + d], (double)snr[at + offset] + 1e-6);
+            if (d > 0 && at >= offset)
+                add_log(&sums[MOST_BINS - d], (double)snr[at - offset] + 1e-6);
         }
     }
     for (int d = 0; d <= 2 * MOST_BINS; d++)
-        out[d] = 2 * count[d] > n ? (float)(sum[d] / count[d]) : NAN;
+        out[d] = 2 * sums[d].count > n ? (float)((sums[d].sum + log(sums[d].product)) / sums[d].count) : NAN;
 }
 
 /* What both sides have at each distance; NAN where only one is in the band. */

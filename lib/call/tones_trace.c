@@ -98,6 +98,7 @@ static bool make_arrays(struct tracer *tracer)
     good = (tracer->history_step = calloc(history * k, 1)) && good;
     good = (tracer->history_power = calloc(history * k, sizeof(float))) && good;
     good = (tracer->history_snr = calloc(history * k, sizeof(float))) && good;
+    good = (tracer->trail_hz = calloc(history, sizeof *tracer->trail_hz)) && good;
     return (tracer->trail = calloc(history, sizeof *tracer->trail)) && good;
 }
 
@@ -139,11 +140,11 @@ void tracer_destroy(struct tracer *tracer)
         return;
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
-    void *const arrays[] = {tracer->level,      tracer->floor,   tracer->smooth,       tracer->smooth_snr,
-                            tracer->occupancy,  tracer->gain,    tracer->best,         tracer->step,
-                            tracer->held,       tracer->limited, tracer->power_store,  tracer->tail,
-                            tracer->centre,     tracer->trail,   tracer->history_step, tracer->history_power,
-                            tracer->history_snr};
+    void *const arrays[] = {tracer->level,       tracer->floor,   tracer->smooth,       tracer->smooth_snr,
+                            tracer->occupancy,   tracer->gain,    tracer->best,         tracer->step,
+                            tracer->held,        tracer->limited, tracer->power_store,  tracer->tail,
+                            tracer->centre,      tracer->trail,   tracer->history_step, tracer->history_power,
+                            tracer->history_snr, tracer->trail_hz};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);

@@ -55,6 +55,7 @@ struct tracer_setup {
     double delay_s;       /* from the end of a contour to the input frame at which it must be known */
     double threshold;     /* score from which a path is a contour */
     double ceiling;       /* that a score does not exceed */
+    bool tells_sidebands; /* a class of it asks for them: else sideband_hz is 0 */
 };
 
 /* Whether a contour (traced whole) stays where it is, but for single cells: a machine's line drifts by less
