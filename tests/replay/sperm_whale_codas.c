@@ -15,7 +15,8 @@
 #include <math.h>
 #include <stdlib.h>
 
-#define RATE 48000.0
+#define RATE 96000.0
+#define SLOT 3
 #define MAX_CODAS 4096
 #define MAX_CLICKS 64
 #define BEFORE_S 30.0 /* of noise: how often strays come is known by then */
@@ -156,7 +157,7 @@ static int hear_pair(struct bands *bands, struct trigger *trigger, const struct 
     struct noise_rate noise = {noise_rate_of, trigger};
     assert_int_equal(codas_create(&coda_class, RATE, noise, &scene.trains), STATUS_OK);
     double end_s = fmax(a->start_s + a->times_s[a->n - 1], b->start_s + b->times_s[b->n - 1]) - a->start_s;
-    uint32_t block = 64 * 2;
+    uint32_t block = 64 * SLOT;
     size_t n = ((size_t)((BEFORE_S + end_s + 2.5) * RATE) / block + 1) * block;
     float *x = calloc(n, sizeof *x);
     assert_non_null(x);
@@ -203,14 +204,14 @@ static void hear_all(bool one_pulse, double least)
         {coda_class.train.guard_low_hz, coda_class.train.guard_high_hz}};
     struct bands *bands;
     struct trigger *trigger;
-    uint32_t history = trigger_get_history(&coda_class, RATE, 2);
-    assert_int_equal(bands_create(RATE, edges, 3, 2, 64, history, &bands), STATUS_OK);
+    uint32_t history = trigger_get_history(&coda_class, RATE, SLOT);
+    assert_int_equal(bands_create(RATE, edges, 3, SLOT, 64, history, &bands), STATUS_OK);
     struct trigger_setup setup = {.call_class = &coda_class,
                                   .bands = bands,
                                   .band = {.n = 2, .bands = {0, 1}},
                                   .guards = {{.n = 1, .bands = {2}}},
                                   .rate_hz = RATE,
-                                  .slot_frames = 2,
+                                  .slot_frames = SLOT,
                                   .block_slots = 64,
                                   .history_slots = history,
                                   .frames_per_frame = 1};
