@@ -42,7 +42,7 @@ with tempfile.TemporaryDirectory(prefix="hushwatch-truth-") as folder:
         truth = json.load(file)
     rows = sqlite3.connect("file:%s?mode=ro" % ledger, uri=True)
     impulses = np.array(rows.execute("select time_s, sel_db, peak_db from impulse where channel = 2 order by time_s").fetchall())
-    calls = rows.execute("select start_s, end_s from call where channel = 1").fetchall()
+    calls = rows.execute("select start_s, end_s from call where channel = 1 and coalesce(n_sounds, 0) = 0").fetchall()
 
 blows = [b["heard"][1] for b in truth["blows"]]
 starts = np.array([b["start_s"] for b in blows])

@@ -59,3 +59,18 @@ uint32_t calls_trials(const struct calls_setup *setup, uint32_t n, uint32_t leas
 {
     return (uint32_t)fmax(least, round(setup->scale * n));
 }
+
+bool calls_has_train_of(const struct call_class *call_class, uint32_t n_pulses)
+{
+    const struct train_shape *train = &call_class->train;
+    return call_class->form == CALL_TRAIN && call_class->animal && !train->free_rhythm &&
+           train->min_pulses <= n_pulses && train->pulse_s < 0.001;
+}
+
+void calls_free_shape(struct call_class *call_class)
+{
+    struct train_shape *train = &call_class->train;
+    train->min_centroid_hz = train->min_bandwidth_hz = train->min_length_s = 0;
+    train->max_centroid_hz = train->max_bandwidth_hz = train->max_length_s = train->max_sweep_hz_s = INFINITY;
+    train->min_sweep_hz_s = -INFINITY;
+}

@@ -44,4 +44,11 @@ uint64_t calls_seed(const struct calls_setup *setup, uint64_t purpose, uint64_t 
 /* How many trials of `n`, at least `least`. */
 uint32_t calls_trials(const struct calls_setup *setup, uint32_t n, uint32_t least);
 
+/* Classes of animals that pulses and trains of 8 are measured of: short pulses, a rhythm, no more pulses than
+ * the train has. */
+bool calls_has_train_of(const struct call_class *call_class, uint32_t n_pulses);
+/* Frees a class of limits on what a pulse looks like: the pulse that fills its band and length is no
+ * animal's. */
+void calls_free_shape(struct call_class *call_class);
+
 #endif

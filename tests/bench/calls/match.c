@@ -187,7 +187,10 @@ json_t *match_calibration(const struct match *match)
     double sums[MATCH_BINS][4] = {{0}};
     json_t *bins = json_array();
     for (uint32_t c = 0; c < match->chain->n_calls; c++) {
-        double p = match->chain->calls[c].certainty, right = match->of_group[c] ? 1 : 0;
+        const struct chain_call *call = &match->chain->calls[c];
+        if (!match->chain->catalogue->classes[call->class_index].animal)
+            continue; /* a machine's sound is no claim of an animal */
+        double p = call->certainty, right = match->of_group[c] ? 1 : 0;
         double *sum = sums[(int)fmin(MATCH_BINS - 1, floor(MATCH_BINS * p))];
         sum[0] += 1;
         sum[1] += right;

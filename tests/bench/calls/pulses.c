@@ -124,6 +124,7 @@ static bool learn_noise(const struct calls_setup *setup, const struct call_class
 static json_t *measure(const struct calls_setup *setup, const struct call_class *of, uint32_t number)
 {
     struct call_class call_class = *of;
+    calls_free_shape(&call_class);
     call_class.train.min_guard_db = -60; /* the guard is no part of the comparison */
     struct noise_law law;
     if (!learn_noise(setup, &call_class, number, &law))
@@ -159,7 +160,7 @@ json_t *calls_pulses(const struct calls_setup *setup)
     json_t *rows = json_array();
     for (uint32_t c = 0; c < setup->catalogue->n_classes; c++) {
         const struct call_class *call_class = &setup->catalogue->classes[c];
-        if (call_class->form == CALL_TRAIN && call_class->animal &&
+        if (calls_has_train_of(call_class, 8) &&
             json_array_append_new(rows, measure(setup, call_class, c)) != 0)
             return NULL;
     }

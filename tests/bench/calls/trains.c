@@ -78,6 +78,7 @@ static bool trial_create(const struct calls_setup *setup, const struct call_clas
 static json_t *measure(const struct calls_setup *setup, const struct call_class *of, uint32_t number)
 {
     struct call_class call_class = *of;
+    calls_free_shape(&call_class);
     struct trial trial;
     call_class.false_per_hour = 0.1;
     if (!trial_create(setup, &call_class, number, &trial))
@@ -116,8 +117,7 @@ json_t *calls_trains(const struct calls_setup *setup)
     json_t *rows = json_array();
     for (uint32_t c = 0; c < setup->catalogue->n_classes; c++) {
         const struct call_class *call_class = &setup->catalogue->classes[c];
-        if (call_class->form == CALL_TRAIN && call_class->animal &&
-            call_class->train.min_pulses <= N_PULSES &&
+        if (calls_has_train_of(call_class, 8) && call_class->train.min_pulses <= N_PULSES &&
             json_array_append_new(rows, measure(setup, call_class, c)) != 0)
             return NULL;
     }
