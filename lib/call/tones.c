@@ -114,6 +114,8 @@ static void set_thresholds(struct tones *tones, struct tracer_setup *setup)
         judged->threshold = log(3600 * tracer_cells_per_s(&alone) / allowed) - BOUND_CAUTION;
         judged->allowance = allowance_of(class);
         judged->tracer = tones->n_tracers;
+        tones->judge->groups[tones->n_tracers] |= 1U << class->group;
+        tones->judge->delay_s[tones->n_tracers] = setup->delay_s;
         setup->threshold = fmin(setup->threshold, judged->threshold);
         setup->ceiling = fmax(setup->ceiling, judged->threshold + HEADROOM);
     }

@@ -14,15 +14,6 @@
 #define LOOK_AGAIN_S 0.05 /* after a sound was held for an open contour */
 #define NEARLY_BEST 0.5   /* classes with so much of the most points are equals */
 
-/* The first class that the tracer traces. */
-static const struct call_class *class_of(const struct judge *judge, uint32_t tracer)
-{
-    uint32_t c = 0;
-    while (c + 1 < judge->n_classes && judge->classes[c].tracer != tracer)
-        c++;
-    return judge->classes[c].class;
-}
-
 bool judge_is_same_sound(const struct judge *judge, const struct contour *a, const struct contour *b)
 {
     double common = related_overlap(a, b), length[2] = {related_duration(a), related_duration(b)};
@@ -32,7 +23,7 @@ bool judge_is_same_sound(const struct judge *judge, const struct contour *a, con
         return false;
     if (related_is_same_line(a, b) || related_is_harmonic(a, b))
         return true;
-    bool same_group = class_of(judge, a->tracer)->group == class_of(judge, b->tracer)->group;
+    bool same_group = (judge->groups[a->tracer] & judge->groups[b->tracer]) != 0;
     if ((a->tracer == b->tracer || !same_group) && related_is_apart(a, b))
         return false; /* another window of the group sees the same sound otherwise */
     return common >= CONTAINED * (same_group ? fmin(length[0], length[1]) : fmax(length[0], length[1]));
@@ -291,7 +282,7 @@ static enum openness look_at_open(const struct judge *judge, struct sound *sound
             overtone = overtone && related_is_overtone(judge->rate_hz, &sound->members[m], &open[i]);
         if (overtone)
             return OVERTONE_OF_OPEN;
-        bool waits = class_of(judge, open[i].tracer)->natural_delay_s <= delay_s;
+        bool waits = judge->delay_s[open[i].tracer] <= delay_s;
         if ((waits || open[i].end_frame > sound->end_frame) && belongs(judge, sound, &open[i])) {
             sound->open_end_frame = fmax(sound->open_end_frame, open[i].end_frame);
             openness = GOES_ON;

@@ -36,6 +36,8 @@ struct judge {
     double look_again; /* frame before which nothing is given */
     uint32_t n_classes;
     struct judged_class classes[CATALOGUE_MAX_CLASSES];
+    uint32_t groups[CATALOGUE_MAX_CLASSES]; /* by tracer: a bit for each group of its classes ... */
+    double delay_s[CATALOGUE_MAX_CLASSES];  /* ... and the shortest delay of them */
     uint64_t rejections[CATALOGUE_MAX_CLASSES][REJECT_COUNT];
     struct sound sounds[JUDGE_MAX_SOUNDS];
 };
