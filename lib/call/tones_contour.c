@@ -67,7 +67,8 @@ static double tone_power(const struct tracer *tracer, const float *power, const 
         sum += power[j];
         noise += snr[j] > 0 ? power[j] / snr[j] : 0;
     }
-    return fmax(sum - noise, 0.1 * sum);
+    const double rest = sum - noise;
+    return rest > 0.1 * sum ? rest : 0.1 * sum;
 }
 
 /* Bins from the path's last rise back to its start, the last first; returns how many. */

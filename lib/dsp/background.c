@@ -6,6 +6,7 @@
 #include <string.h>
 
 #define QUANTILE 0.3
+#define UP_TENTHS 3              /* the same in tenths */
 #define QUANTILE_OF_MEAN 0.35667 /* -ln(1 - 0.3): the quantile of an exponential with mean 1 */
 #define MEDIAN_OF_MEAN 0.69315F  /* ln 2 */
 #define RISE_DB_S 0.5            /* at which a bin that is always above goes up */
@@ -14,7 +15,7 @@
 #define READY_FRAMES 8
 #define LEAST 1e-30F          /* of a quantile: digital silence */
 #define RESTART_RATIO 10.0F   /* a rise of all that is heard, while learning, begins anew */
-#define BROADBAND_SPEED 4.0   /* of learning, while all of a stretch has risen */
+#define BROADBAND_SPEED 4     /* of learning, while all of a stretch has risen */
 #define STRETCH 32            /* bins whose median over frequency tells broadband sound */
 #define LEAST_STRETCH 8       /* bins that have a median worth the name */
 #define BROADBAND_RATIO 1.41F /* over the mean; 1.5 dB */
@@ -117,10 +118,19 @@ static double step_of(const struct background *background)
     return fmax(background->step_db, FIRST_STEP_DB * first / fmax(first, (double)background->n_frames));
 }
 
-static struct step make_step(double step_db)
+static double whole_power(double x, unsigned n)
 {
-    return (struct step){(float)pow(10, QUANTILE * step_db / 10),
-                         (float)pow(10, -(1 - QUANTILE) * step_db / 10)};
+    double product = 1;
+    for (; n > 0; n--)
+        product *= x;
+    return product;
+}
+
+/* By QUANTILE of the step up, by the rest of it down, each in tenths; `speed` times as far. */
+static struct step make_step(double tenth, unsigned speed)
+{
+    return (struct step){(float)whole_power(tenth, UP_TENTHS * speed),
+                         (float)(1 / whole_power(tenth, (10 - UP_TENTHS) * speed))};
 }
 
 /* The caution is twice the standard deviation of a young estimate, sqrt(step q (1 - q) / (2 f)) for a
@@ -132,8 +142,9 @@ static void prepare_step(struct background *background)
     if (step_db == background->next_step_db)
         return;
     background->next_step_db = step_db;
-    background->step = make_step(step_db);
-    background->fast_step = make_step(BROADBAND_SPEED * step_db);
+    const double tenth = pow(10, step_db / 100);
+    background->step = make_step(tenth, 1);
+    background->fast_step = make_step(tenth, BROADBAND_SPEED);
     background->caution = (float)pow(10, 2 * scale * (sqrt(step_db) - sqrt(background->step_db)) / 10);
 }
 
