@@ -32,12 +32,12 @@ struct band {
 
 struct tones {
     double rate_hz;
-    uint32_t n_tracers, n_slice, n_held;
+    uint32_t n_tracers, n_slice;
     uint64_t next_frame; /* of the next sample */
     uint64_t slice_end;  /* a multiple of n_slice */
     bool owes;           /* a reset ended contours whose calls are still to be given */
     uint64_t owes_known;
-    float *slice;
+    float *limited;       /* [n_slice]: samples of which some were out of range */
     struct contour *open; /* [MAX_OPEN] */
     struct judge *judge;
     uint32_t n_bands;
@@ -173,10 +173,10 @@ static enum status fill(struct tones *tones, const struct call_class *classes, u
 {
     tones->n_slice = (uint32_t)ceil(SLICE_S * tones->rate_hz);
     tones->slice_end = tones->n_slice;
-    tones->slice = calloc(tones->n_slice, sizeof *tones->slice);
+    tones->limited = calloc(tones->n_slice, sizeof *tones->limited);
     tones->open = calloc(MAX_OPEN, sizeof *tones->open);
     tones->judge = calloc(1, sizeof *tones->judge);
-    if (!tones->slice || !tones->open || !tones->judge)
+    if (!tones->limited || !tones->open || !tones->judge)
         return STATUS_NO_MEMORY;
     tones->judge->rate_hz = tones->rate_hz;
     tones->judge->n_classes = n_classes;
@@ -213,7 +213,7 @@ void tones_destroy(struct tones *tones)
         decimator_destroy(tones->bands[i].decimator);
         free(tones->bands[i].samples);
     }
-    free(tones->slice);
+    free(tones->limited);
     free(tones->open);
     free(tones->judge);
     free(tones);
@@ -224,15 +224,14 @@ bool tones_can_hear(const struct tones *tones, uint32_t class_index)
     return class_index < tones->judge->n_classes && tones->judge->classes[class_index].tracer != NO_TRACER;
 }
 
+/* The first band has been filled as the samples came. */
 static void run_bands(struct tones *tones)
 {
-    const float *from = tones->slice;
-    uint32_t n = tones->n_held;
-    for (uint32_t i = 0; i < tones->n_bands; i++) {
+    for (uint32_t i = 1; i < tones->n_bands; i++) {
+        const struct band *from = &tones->bands[i - 1];
         struct band *band = &tones->bands[i];
-        band->n_samples = (uint32_t)decimator_push(band->decimator, from, n, band->samples);
-        from = band->samples;
-        n = band->n_samples;
+        band->n_samples =
+            (uint32_t)decimator_push(band->decimator, from->samples, from->n_samples, band->samples);
     }
 }
 
@@ -246,7 +245,8 @@ static void run_slice(struct tones *tones, const struct found_sink *sink)
         struct trace_sink to = {take_contour, &context};
         tracer_push(tones->tracers[i], band->samples, band->n_samples, &to);
     }
-    tones->n_held = 0;
+    if (tones->n_bands > 0)
+        tones->bands[0].n_samples = 0;
     if (!sink || !judge_is_due(tones->judge, (double)tones->next_frame))
         return;
     uint32_t n_open = 0;
@@ -292,21 +292,32 @@ static float limit(float pascals)
     return isfinite(pascals) ? copysignf(MOST_PA, pascals) : 0;
 }
 
-/* Copies n samples, those in range as they are. */
-static void take_limited(const float *pascals, uint32_t n, float *out)
+static bool is_in_range(const float *pascals, uint32_t n)
 {
     const lanes most = lanes_all(MOST_PA);
+    lane_mask beyond = {0};
     uint32_t i = 0;
-    while (i < n) {
-        for (; i + LANES <= n; i += LANES) {
-            const lanes x = lanes_load(pascals + i);
-            if (lanes_any(~(lanes_size(x) <= most)))
-                break;
-            lanes_store(out + i, x);
-        }
-        for (uint32_t end = i + LANES < n ? i + LANES : n; i < end; i++)
-            out[i] = fabsf(pascals[i]) <= MOST_PA ? pascals[i] : limit(pascals[i]);
+    for (; i + LANES <= n; i += LANES)
+        beyond |= ~(lanes_size(lanes_load(pascals + i)) <= most);
+    bool good = !lanes_any(beyond);
+    for (; i < n; i++)
+        good = good && fabsf(pascals[i]) <= MOST_PA;
+    return good;
+}
+
+/* At most a slice of samples goes into the first band. */
+static void take_samples(struct tones *tones, const float *pascals, uint32_t n)
+{
+    if (tones->n_bands == 0)
+        return;
+    if (!is_in_range(pascals, n)) {
+        for (uint32_t i = 0; i < n; i++)
+            tones->limited[i] = fabsf(pascals[i]) <= MOST_PA ? pascals[i] : limit(pascals[i]);
+        pascals = tones->limited;
     }
+    struct band *first = &tones->bands[0];
+    first->n_samples +=
+        (uint32_t)decimator_push(first->decimator, pascals, n, first->samples + first->n_samples);
 }
 
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink)
@@ -316,10 +327,9 @@ void tones_push(struct tones *tones, const float *pascals, uint32_t n, const str
     while (n > 0) {
         uint64_t left = tones->slice_end - tones->next_frame;
         uint32_t take = n < left ? n : (uint32_t)left;
-        take_limited(pascals, take, tones->slice + tones->n_held);
+        take_samples(tones, pascals, take);
         pascals += take;
         n -= take;
-        tones->n_held += take;
         tones->next_frame += take;
         if (take == left) {
             tones->slice_end += tones->n_slice;

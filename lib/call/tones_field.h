@@ -73,6 +73,7 @@ struct tracer {
     int32_t *step;             /* ... and how far it comes, or STEP_START */
     struct cells now, before;
     struct path paths[MAX_PATHS];
+    uint32_t n_paths; /* all that are open are among the first so many */
 
     double *centre;       /* [n_history]: input frame of each frame's middle */
     int8_t *history_step; /* [n_history][stride] */

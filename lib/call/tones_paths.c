@@ -112,7 +112,11 @@ static bool has_no_path(const int16_t paths[TILE])
 
 static void find_tips(struct tracer *tracer)
 {
-    for (uint32_t i = 0; i < MAX_PATHS; i++)
+    while (tracer->n_paths > 0 && !tracer->paths[tracer->n_paths - 1].open)
+        tracer->n_paths--;
+    if (tracer->n_paths == 0)
+        return;
+    for (uint32_t i = 0; i < tracer->n_paths; i++)
         tracer->paths[i].tip = 0;
     const int16_t *paths = tracer->now.path + MAX_STEP;
     for (uint32_t k = 0; k < tracer->n_bins; k++) {
@@ -172,7 +176,7 @@ static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
 {
     const float ceiling = (float)tracer->setup.ceiling;
     const double max_frames = tracer->setup.max_s * tracer->frame_rate - 2;
-    for (uint32_t i = 0; i < MAX_PATHS; i++) {
+    for (uint32_t i = 0; i < tracer->n_paths; i++) {
         struct path *path = &tracer->paths[i];
         if (!path->open)
             continue;
@@ -208,6 +212,7 @@ static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink
         float best = now->score[at] < ceiling ? now->score[at] : ceiling;
         *path = (struct path){true, best, now->first[at], tracer->frame, k, now->score[at], k};
         now->path[at] = (int16_t)i;
+        tracer->n_paths = i < tracer->n_paths ? tracer->n_paths : i + 1;
         return;
     }
     now->score[at] = 0;
