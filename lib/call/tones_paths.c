@@ -38,14 +38,16 @@ static inline void find_best(struct tracer *tracer, uint32_t k, int8_t *out_step
     memcpy(out_steps + k, &history, sizeof history);
 }
 
-/* The cell begins a path, or goes on from the one that the best path comes from. */
-static void begin_cell(struct tracer *tracer, uint32_t at, float snr)
+/* Four cells begin paths, but for those that go on from another. */
+static inline void begin_cells(struct tracer *tracer, uint32_t at, const float *snrs)
 {
     struct cells *now = &tracer->now;
-    now->slope[at] = 0;
-    now->level[at] = now->peak[at] = snr;
-    now->path[at] = NO_PATH;
-    now->first[at] = tracer->frame;
+    const lanes snr = lanes_load(snrs);
+    lanes_store(now->slope + at, lanes_all(0));
+    lanes_store(now->level + at, snr);
+    lanes_store(now->peak + at, snr);
+    for (uint32_t lane = 0; lane < TILE; lane++)
+        now->first[at + lane] = tracer->frame;
 }
 
 static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr)
@@ -62,14 +64,11 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr
     now->first[at] = before->first[from];
 }
 
+/* A cell that goes on from another, and what it says of the path that runs there. */
 static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceiling)
 {
     const uint32_t at = k + MAX_STEP;
     const int step = tracer->step[k];
-    if (step == STEP_START) {
-        begin_cell(tracer, at, snr);
-        return;
-    }
     if (tracer->gain[k] > FLANK_GAIN && snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
         const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
         tracer->now.score[at] = score > 0 ? score : 0;
@@ -77,7 +76,22 @@ static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceilin
             return;
     }
     inherit_cell(tracer, at, step, snr);
-    tracer->tail[k] = tracer->now.path[at] == NO_PATH ? 0 : TAIL_SHARE;
+    if (tracer->now.path[at] == NO_PATH)
+        return;
+    struct path *path = &tracer->paths[tracer->now.path[at]];
+    tracer->tail[k] = TAIL_SHARE;
+    if (tracer->now.score[at] > path->tip) {
+        path->tip = tracer->now.score[at];
+        path->tip_bin = k;
+    }
+}
+
+static void forget_tips(struct tracer *tracer)
+{
+    while (tracer->n_paths > 0 && !tracer->paths[tracer->n_paths - 1].open)
+        tracer->n_paths--;
+    for (uint32_t i = 0; i < tracer->n_paths; i++)
+        tracer->paths[i].tip = 0;
 }
 
 static void step_cells(struct tracer *tracer)
@@ -92,44 +106,18 @@ static void step_cells(struct tracer *tracer)
         const lanes best = lanes_load(tracer->best + k);
         const lanes score = lanes_least(best, lanes_all(ceiling)) + lanes_load(tracer->gain + k);
         lanes_store(scores + k, lanes_greatest(score, lanes_all(0)));
+        begin_cells(tracer, k + MAX_STEP, snrs + k);
     }
     for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
         scores[k] = 0; /* beyond the band nothing runs */
     memset(tracer->now.path, 0xff, (tracer->stride + 2 * MAX_STEP) * sizeof *tracer->now.path); /* NO_PATH */
     memset(tracer->tail, 0, tracer->stride * sizeof *tracer->tail);
-    for (uint32_t k = 0; k < tracer->n_bins; k++)
-        if (scores[k] > 0)
-            step_cell(tracer, k, snrs[k], ceiling);
-}
-
-/* Whether no path runs in the next four cells. */
-static bool has_no_path(const int16_t paths[TILE])
-{
-    uint64_t four;
-    memcpy(&four, paths, sizeof four);
-    return four == UINT64_MAX;
-}
-
-static void find_tips(struct tracer *tracer)
-{
-    while (tracer->n_paths > 0 && !tracer->paths[tracer->n_paths - 1].open)
-        tracer->n_paths--;
-    if (tracer->n_paths == 0)
-        return;
-    for (uint32_t i = 0; i < tracer->n_paths; i++)
-        tracer->paths[i].tip = 0;
-    const int16_t *paths = tracer->now.path + MAX_STEP;
-    for (uint32_t k = 0; k < tracer->n_bins; k++) {
-        if (k % TILE == 0 && has_no_path(paths + k)) {
-            k += TILE - 1;
-            continue;
-        }
-        if (paths[k] == NO_PATH)
-            continue;
-        struct path *path = &tracer->paths[paths[k]];
-        if (tracer->now.score[k + MAX_STEP] > path->tip) {
-            path->tip = tracer->now.score[k + MAX_STEP];
-            path->tip_bin = k;
+    forget_tips(tracer);
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
+        const lanes going = lanes_least(lanes_load(scores + k), lanes_load(tracer->best + k));
+        for (uint32_t bits = lanes_bits(going > lanes_all(0)); bits; bits &= bits - 1) {
+            const uint32_t at = k + (uint32_t)__builtin_ctz(bits);
+            step_cell(tracer, at, snrs[at], ceiling);
         }
     }
 }
@@ -238,7 +226,6 @@ static void open_paths(struct tracer *tracer, const struct trace_sink *sink)
 void paths_advance(struct tracer *tracer, const struct trace_sink *sink)
 {
     step_cells(tracer);
-    find_tips(tracer);
     follow_paths(tracer, sink);
     open_paths(tracer, sink);
     struct cells swap = tracer->before;

@@ -78,6 +78,17 @@ static inline int lanes_any(lane_mask mask)
     return (halves[0] | halves[1]) != 0;
 }
 
+/* A bit for each lane of a comparison that is true, lane 0 the lowest. */
+static inline uint32_t lanes_bits(lane_mask mask)
+{
+#ifdef __SSE4_1__
+    return (uint32_t)_mm_movemask_ps((__m128)mask);
+#else
+    const lane_mask bits = mask & (lane_mask){1, 2, 4, 8};
+    return (uint32_t)(bits[0] | bits[1] | bits[2] | bits[3]);
+#endif
+}
+
 static inline double lanes_sum(lanes x)
 {
     return ((double)x[0] + x[1]) + ((double)x[2] + x[3]);
