@@ -8,7 +8,7 @@
 #include "listen/blocks.h"
 #include "listen/listen.h"
 #include "scene/render.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <sndfile.h>
 #include <stdlib.h>
@@ -186,10 +186,8 @@ static uint32_t count_false(const struct heard *heard)
 static void song_is_found_under_blows_and_shots(void **state)
 {
     (void)state;
-    struct problems problems = {0};
     struct catalogue *catalogue = calloc(1, sizeof *catalogue);
-    assert_int_equal(catalogue_load("config/calls", &problems, NULL, catalogue), STATUS_OK);
-    problems_destroy(&problems);
+    assert_true(catalogue && test_load_catalogue(catalogue));
     struct sound sound = read_recording(), mixed = sound;
     mixed.samples = malloc(sound.n * sizeof(float));
     const float scale = 0.02F; /* so that +20 dB does not clip */

@@ -110,7 +110,7 @@ def check_law(ledger, truth, ranges):
         r = slant[source["channel"] - 1]
         there = here + 20 * math.log10(r / 750) + absorbed * (r - 750) / (slant[1] - slant[0])
         check("the interval at 750 m holds the truth", source["at_750_m_low_db"] <= there <= source["at_750_m_high_db"], (source, there))
-        check("the level at 750 m is within %.1f dB of the truth" % 0.3, abs(source["at_750_m_db"] - there) <= 0.3, (source, there))
+        check("the level at 750 m is within 0.3 dB of the truth", abs(source["at_750_m_db"] - there) <= 0.3, (source, there))
     first = ask(ledger, "SELECT fitted, n_db, range_low_m FROM source ORDER BY seq LIMIT 1")
     figure("the first word on the source: fitted %s, N %s, from %s m" % first[0])
 

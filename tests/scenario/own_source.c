@@ -6,7 +6,7 @@
 #include "listen/blocks.h"
 #include "listen/listen.h"
 #include "scene/render.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -17,10 +17,8 @@
 /* The shipped catalogue's class alone. */
 static struct call_class fin_class(void)
 {
-    struct problems problems = {0};
     struct catalogue *catalogue = calloc(1, sizeof *catalogue);
-    assert_int_equal(catalogue_load("config/calls", &problems, NULL, catalogue), STATUS_OK);
-    problems_destroy(&problems);
+    assert_true(catalogue && test_load_catalogue(catalogue));
     uint32_t c = 0;
     while (c < catalogue->n_classes && strcmp(catalogue->classes[c].name, "fin whale song") != 0)
         c++;

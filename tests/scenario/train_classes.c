@@ -1,13 +1,13 @@
-/* Every sound made of pulses that lib/scene can make, alone in a calm sea, and what the classes of config/calls
- * say of it: the animals' by their own class, none by another group's. The recipes' figures and sources stand in
- * lib/scene/kind_*.c. */
+/* Every sound made of pulses that lib/scene can make, alone in a calm sea, and what the classes of
+ * config/calls say of it: the animals' by their own class, none by another group's. The recipes' figures and
+ * sources stand in lib/scene/kind_*.c. */
 #include "support/test.h"
 
 #include "call/pulses.h"
 #include "level/calibration.h"
 #include "scene/kind.h"
 #include "scene/render.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -64,7 +64,8 @@ static void listen_to(const struct voice *voice, uint64_t seed, struct heard *he
     float *samples = calloc(CHUNK, sizeof *samples);
     assert_non_null(samples);
     assert_int_equal(render_create(&scene, &render), STATUS_OK);
-    assert_int_equal(pulses_create(catalogue.classes, catalogue.n_classes, voice->rate_hz, &pulses), STATUS_OK);
+    assert_int_equal(pulses_create(catalogue.classes, catalogue.n_classes, voice->rate_hz, &pulses),
+                     STATUS_OK);
     pulses_reset(pulses, 0);
     *heard = (struct heard){.rate_hz = voice->rate_hz};
     struct found_sink sink = {hear, heard};
@@ -122,7 +123,8 @@ static void each_animal_is_heard_as_its_own(void **state)
             printf(" %s %u calls of %u pulses, first known at %.1f s;", catalogue.classes[c].name,
                    heard.n_calls[c], heard.n_pulses[c], heard.first_s[c]);
             found |= strcmp(catalogue.classes[c].name, voice->class_name) == 0;
-            n_other += catalogue.classes[c].animal && catalogue.classes[c].group != group_of(voice->class_name);
+            n_other +=
+                catalogue.classes[c].animal && catalogue.classes[c].group != group_of(voice->class_name);
         }
         printf("\n");
         n_missed += !found;
@@ -134,12 +136,7 @@ static void each_animal_is_heard_as_its_own(void **state)
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
-    enum status status = catalogue_load("config/calls", &problems, NULL, &catalogue);
-    if (status != STATUS_OK)
-        print_error("%s\n", problems.lines.data);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(&catalogue) ? 0 : -1;
 }
 
 int main(void)

@@ -6,7 +6,7 @@
 #include "base/units.h"
 #include "call/pulses.h"
 #include "call/trains.h"
-#include "settings/catalogue.h"
+#include "support/catalogue.h"
 #include "support/clicks.h"
 #include <math.h>
 #include <stdlib.h>
@@ -521,12 +521,7 @@ static void hidden_pulses_make_no_train(void **state)
 static int load(void **state)
 {
     (void)state;
-    struct problems problems = {0};
-    enum status status = catalogue_load("config/calls", &problems, NULL, &catalogue);
-    if (status != STATUS_OK)
-        print_error("%s\n", problems.lines.data);
-    problems_destroy(&problems);
-    return status == STATUS_OK ? 0 : -1;
+    return test_load_catalogue(&catalogue) ? 0 : -1;
 }
 
 int main(void)
