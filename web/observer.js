@@ -104,9 +104,19 @@ function drawSource(state) {
   });
 }
 
+/** Silence says nothing of a group that has no class, or whose calls no stream carries; one class alone is named. */
+function drawGroups(state) {
+  const named = (hearing) => state.groups.filter((g) => g.hearing === hearing).map((g) => g.group).join(", ");
+  const alone = state.groups.map((g) => [g.group, [...new Set(state.streams.flatMap((s) => s.classes).filter((c) => c.group === g.group && c.hearable).map((c) => c.class))]]).filter(([, classes]) => classes.length === 1);
+  const known = state.streams.some((stream) => stream.classes.length), eye = named("visual only"), rate = named("not carried by the rate");
+  setText($("not_by_ear"), !known ? "" : (rate ? `Not carried by the rate, so not by ear: ${rate}. ` : "") + (eye ? `Visual only, no call of theirs is proof: ${eye}. ` : "")
+    + alone.map(([group, classes]) => `Of ${group} only the ${classes[0]}.`).join(" "));
+}
+
 function drawHearing(state) {
   drawSums(state, site ? site.permit.zones : []);
   drawResearch(state);
+  drawGroups(state);
   keyed($("streams"), state.streams, (stream) => stream.stream, () => el("li", { class: "stream" }, el("b"), el("span")), (node, stream) => {
     node.classList.toggle("bad", !stream.hearing);
     setText(node.firstChild, (stream.hearing ? "Hearing " : "CANNOT HEAR ") + (stream.name || "stream " + stream.stream));

@@ -15,6 +15,8 @@ static void accounts(struct text *text, const struct hearing_stream *stream)
         json_next(text);
         text_append(text, "{");
         json_text(text, "class", account->name);
+        if (account->group != GROUP_UNKNOWN)
+            json_text(text, "group", group_text(account->group));
         json_flag(text, "hearable", account->hearable);
         json_number(text, "found", (double)account->n_found, 0);
         json_name(text, "rejected");
@@ -47,6 +49,28 @@ static void streams(struct text *text, const struct hearing_view *hearing)
         json_number(text, "unheard_s", stream->unheard_s, 3);
         json_number(text, "masked_s", stream->masked_s, 3);
         accounts(text, stream);
+        text_append(text, "}");
+    }
+    text_append(text, "]");
+}
+
+/* Of each group what listening can say of it, by the stream that hears most. */
+static void groups(struct text *text, const struct hearing_view *hearing)
+{
+    json_name(text, "groups");
+    text_append(text, "[");
+    for (unsigned g = GROUP_UNKNOWN + 1; g < GROUP_COUNT; g++) {
+        enum group_hearing best = GROUP_VISUAL_ONLY;
+        for (uint32_t i = 0; i < hearing->n_streams; i++) {
+            const struct hearing_stream *stream = &hearing->streams[i];
+            enum group_hearing one =
+                listen_group_hearing(stream->accounts, stream->n_accounts, (enum group)g);
+            best = one < best ? one : best;
+        }
+        json_next(text);
+        text_append(text, "{");
+        json_text(text, "group", group_text((enum group)g));
+        json_text(text, "hearing", group_hearing_text(best));
         text_append(text, "}");
     }
     text_append(text, "]");
@@ -228,6 +252,7 @@ static void unheard_time(struct text *text, const struct hearing_view *hearing)
 void board_json_hearing(struct text *text, const struct hearing_view *hearing)
 {
     streams(text, hearing);
+    groups(text, hearing);
     levels(text, hearing);
     sounds(text, hearing);
     unheard_time(text, hearing);

@@ -26,7 +26,8 @@ static const char help[] =
     "  --pace WORD    fast (as fast as possible, the default) or real\n"
     "  --explain      at the end, why sounds were not calls: of each class of the call catalogue what was "
     "found and\n"
-    "                 what was rejected, by name, and which classes the recording's rate cannot carry\n\n"
+    "                 what was rejected, by name, which classes the recording's rate cannot carry,\n"
+    "                 and which groups no class hears\n\n"
     "Exit code: 0 good, 2 wrong use or settings, 3 the system failed.\n";
 
 struct scan {
@@ -167,6 +168,16 @@ static void explain_class(const struct class_account *account)
     printf("%s\n", *between ? "" : "nothing came near");
 }
 
+/* "Nothing heard" means nothing for a group that cannot be heard: each such is named. */
+static void explain_groups(const struct class_account *accounts, uint32_t n)
+{
+    for (unsigned g = GROUP_UNKNOWN + 1; g < GROUP_COUNT; g++) {
+        enum group_hearing hearing = listen_group_hearing(accounts, n, (enum group)g);
+        if (hearing != GROUP_BY_EAR)
+            printf("  %-28s %10s  %s\n", group_text((enum group)g), "group", group_hearing_text(hearing));
+    }
+}
+
 /* Why sounds were not calls or impulses. After the streams have ended. */
 static void explain(struct chain *chain)
 {
@@ -179,6 +190,7 @@ static void explain(struct chain *chain)
                i, stream_get_facts(stream)->rate_hz, "class", "found", "rejected, and why");
         for (uint32_t c = 0; c < n; c++)
             explain_class(&accounts[c]);
+        explain_groups(accounts, n);
     }
 }
 

@@ -70,6 +70,7 @@ void listen_set_map(struct listen *listen, const struct time_map *map);
  * rejected by each class that looks at it and on each channel that listens, and counts as often. */
 struct class_account {
     char name[CALL_CLASS_SIZE];
+    enum group group; /* unknown: of what is no animal's */
     bool hearable;    /* the rate carries what the class needs, and a channel listens */
     uint64_t n_found; /* calls given; of a class that is no animal's: sounds counted */
     uint64_t rejected[REJECT_COUNT];
@@ -81,5 +82,16 @@ struct class_account {
 /* Writes one a class of the catalogue, in its order, then that of the impulses, named "impulse"; returns how
  * many. */
 uint32_t listen_get_accounts(const struct listen *listen, struct class_account out[LISTEN_MAX_ACCOUNTS]);
+
+/* What listening can say of a group: some class of it is heard; the rate carries none of its classes; or the
+ * catalogue has no class for it, because no call of it is proof, and only eyes can find it. In this order,
+ * so that the least of several streams' is that of them all. */
+enum group_hearing { GROUP_BY_EAR, GROUP_NOT_CARRIED, GROUP_VISUAL_ONLY };
+
+/* Of n accounts of one stream. */
+enum group_hearing listen_group_hearing(const struct class_account *accounts, uint32_t n, enum group group);
+
+/* "by ear", "not carried by the rate", "visual only". */
+const char *group_hearing_text(enum group_hearing hearing);
 
 #endif

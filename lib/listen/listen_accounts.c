@@ -74,6 +74,7 @@ uint32_t listen_get_accounts(const struct listen *listen, struct class_account o
     get_rejections(listen, rejections);
     for (uint32_t c = 0; c < catalogue->n_classes; c++) {
         memcpy(out[c].name, catalogue->classes[c].name, sizeof out[c].name);
+        out[c].group = catalogue->classes[c].group;
         out[c].hearable = can_hear(listen, c);
         out[c].n_found = listen->n_found[c];
         memcpy(out[c].rejected, rejections[c], sizeof out[c].rejected);
@@ -82,4 +83,19 @@ uint32_t listen_get_accounts(const struct listen *listen, struct class_account o
         return catalogue->n_classes;
     account_for_impulses(listen, &out[catalogue->n_classes]);
     return catalogue->n_classes + 1;
+}
+
+enum group_hearing listen_group_hearing(const struct class_account *accounts, uint32_t n, enum group group)
+{
+    enum group_hearing best = GROUP_VISUAL_ONLY;
+    for (uint32_t i = 0; i < n; i++)
+        if (accounts[i].group == group && best != GROUP_BY_EAR)
+            best = accounts[i].hearable ? GROUP_BY_EAR : GROUP_NOT_CARRIED;
+    return best;
+}
+
+const char *group_hearing_text(enum group_hearing hearing)
+{
+    static const char *const names[] = {"by ear", "not carried by the rate", "visual only"};
+    return names[hearing];
 }

@@ -379,14 +379,17 @@ static void fill_hearing(struct server *server)
     add_call(server, 2, GROUP_DELPHINID, "whistle", CALL_TONE, 33, 0.8, 6000, 14000);
     add_call(server, 3, GROUP_BALEEN_WHALE, "humpback song", CALL_TONE, 52, 1.9, 220, 480);
     hearing->n_calls = 4;
-    stream->n_accounts = 3;
+    stream->n_accounts = 4;
     stream->accounts[0] =
         (struct class_account){.name = "porpoise click train",
+                               .group = GROUP_PORPOISE,
                                .hearable = true,
                                .n_found = 2,
                                .rejected = {[REJECT_TOO_WEAK] = 1204, [REJECT_NO_RHYTHM] = 7310}};
-    stream->accounts[1] = (struct class_account){.name = "humpback song", .hearable = true};
+    stream->accounts[1] =
+        (struct class_account){.name = "humpback song", .group = GROUP_BALEEN_WHALE, .hearable = true};
     stream->accounts[2] = (struct class_account){.name = "sonar above the rate", .hearable = false};
+    stream->accounts[3] = (struct class_account){.name = "seal trill", .group = GROUP_PHOCID};
     hearing->n_unheard = 1;
     hearing->unheard[0] =
         (struct hearing_unheard){.stream = 1,

@@ -63,9 +63,12 @@ def observer_shows(server, observer):
     check(painted == 3, "three strips of sound are painted", painted)
     check("1.2" in observer.text("#levels") and "rel." in observer.text("#levels"), "levels of an uncalibrated channel are marked relative")
     check("3 of 4 values are unverified" in observer.text("#permit_values"), "the permit's unverified values are counted")
+    told = observer.text("#not_by_ear")
+    check("not by ear: phocid." in told and "Visual only, no call of theirs is proof: sperm whale, beaked whale, delphinid, otariid," in told
+          and "Of porpoise only the porpoise click train." in told, "it says of which groups silence means nothing", told)
     check(not observer.shown("#classes"), "why sounds were not calls is closed until it is asked for")
     find(observer, "#explain summary").click()
-    told, _ = observer.until("return document.querySelectorAll('#classes li').length === 3", 3)
+    told, _ = observer.until("return document.querySelectorAll('#classes li').length === 4", 3)
     check(told and "porpoise click train: 2 found; rejected: no rhythm 7,310, too weak 1,204." in observer.text("#classes")
           and "sonar above the rate: cannot be heard at 384 kHz." in observer.text("#classes"),
           "it says of each class what was rejected and what cannot be heard", observer.text("#classes"))
@@ -255,8 +258,9 @@ def faults(server, observer, crew):
     crew.picture("crew-stop-faults")
     for word, text in [("may-start", "You may start"), ("carry-on", "Carry on")]:
         server.say(word)
+        told, _ = crew.until("return document.getElementById('plain').innerText.includes('‘%s’')" % text, 3)
         gone = words_are(crew, "NO ADVICE.")
-        check(gone and text in crew.text("#plain") and "withdrawn" in crew.text("#plain"), "'%s' is withdrawn while deaf" % word, crew.text("#plain"))
+        check(told and gone and text in crew.text("#plain") and "withdrawn" in crew.text("#plain"), "'%s' is withdrawn while deaf" % word, crew.text("#plain"))
     server.say("pre-watch")
     check(words_are(crew, "DO NOT START.") and "DO NOT START REMAINS" in crew.script(FAULTS), "do not start stays while deaf", crew.script(FAULTS))
     server.say("hear", "disk-ok", "may-start")

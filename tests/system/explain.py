@@ -62,6 +62,11 @@ def main():
         deaf = [name for name, row in table.items() if row == ("-", "cannot be heard at this rate")]
         too_high = [name for name, low_hz in known.items() if low_hz >= RATE / 2]
         check("a class above half of the rate cannot be heard, and is said so", too_high and set(too_high) <= set(deaf), (too_high, deaf))
+        deaf_groups = dict(re.findall(r"^  (\S.{27}) +group  (.+)$", done.stdout, re.MULTILINE))
+        deaf_groups = {name.strip(): why for name, why in deaf_groups.items()}
+        check("groups that cannot be heard are named: a porpoise clicks above 100 kHz (Villadsgaard et al. 2007), and no call of a turtle is proof",
+              deaf_groups.get("porpoise") == "not carried by the rate" and deaf_groups.get("turtle") == "visual only"
+              and "baleen whale" not in deaf_groups, deaf_groups)
         carried = [name for name in table if name not in deaf]
         check("some classes can", len(carried) > 0, table)
         lines = sum(int(n) for name in carried for n in re.findall(r"steady line (\d+)", table[name][1]))
