@@ -135,6 +135,7 @@ static void date_run(struct chain *chain)
     }
     chain->run = chain->restored.last_run + 1;
     chain->zero_unix_ns = chain->restored.last_run ? chain->restored.zero_unix_ns : now_unix_ns;
+    watch_set_clock(chain->watch, chain->zero_unix_ns);
     int64_t now_ns = now_unix_ns - chain->zero_unix_ns;
     int64_t last_ns = chain->restored.last_ns;
     chain->mark.outage_start_ns = last_ns;

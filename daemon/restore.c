@@ -165,6 +165,7 @@ static enum status take_entry(void *context, const struct entry *entry)
     if (!rebuilding->has_zero) {
         rebuilding->has_zero = true;
         restored->zero_unix_ns = unix_ns;
+        watch_set_clock(rebuilding->watch, unix_ns);
     }
     int64_t watch_ns = unix_ns - restored->zero_unix_ns;
     if (watch_ns > restored->last_ns)

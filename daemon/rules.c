@@ -14,7 +14,7 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
     struct rules *rules = calloc(1, sizeof *rules);
     if (!rules)
         return STATUS_NO_MEMORY;
-    enum status permit = permit_load(site->permit, problems, &rules->permit);
+    enum status permit = permit_load(site->permit, &site->permit_fills, problems, &rules->permit);
     enum status calls = catalogue_load(site->calls, problems, &site->effective, &rules->catalogue);
     enum status criteria =
         source_settings_criteria(&site->source, problems, &site->effective, &rules->criteria);
@@ -80,6 +80,7 @@ enum status rules_create_watch(const struct rules *rules, const struct site *sit
                                 .evidence_decay_s = site->evidence_decay_s,
                                 .sighting_log_spread = site->sighting_log_spread,
                                 .silence_s = site->silence_s};
+    setup.depth_m = site->source.depth_known ? site->source.depth_m : 0;
     setup.sound_speed_m_s = sound_speed_m_s(site);
     for (uint32_t i = 0; i < n_streams; i++)
         for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
@@ -144,7 +145,7 @@ enum status rules_create_tally(const struct rules *rules, const struct site *sit
                                   .level_spread_db = site->source.level_spread_db,
                                   .scatter_db = site->source.scatter_db,
                                   .zone_edge_m = zone_edge_m(&rules->permit),
-                                  .soft_start_s = 60 * rules->permit.soft_start_min_minutes,
+                                  .soft_start_s = 60 * rules->permit.soft_start.least_minutes,
                                   .n_others = site->source.n_others,
                                   .others = site->source.others,
                                   .inner_m = inner_m(&site->source)};

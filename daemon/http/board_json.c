@@ -102,8 +102,8 @@ static void permit_object(struct text *text, const struct permit *permit)
     json_number(text, "year", permit->year, 0);
     json_flag(text, "demonstration", permit->demonstration);
     json_text(text, "activity", (unsigned)permit->activity < 3 ? activities[permit->activity] : "unknown");
-    json_flag(text, "visual_needed", permit->pre_watch_visual);
-    json_flag(text, "acoustic_needed", permit->pre_watch_acoustic);
+    json_flag(text, "visual_needed", permit->pre_watches[0].visual);
+    json_flag(text, "acoustic_needed", permit->pre_watches[0].acoustic);
     json_number(text, "confirm_countdown_s", permit->confirm_countdown_s, 1);
     zones(text, permit);
     values(text, permit);

@@ -33,6 +33,18 @@ void problems_destroy(struct problems *problems)
         text_destroy(&problems->lines);
 }
 
+static enum status read_result(struct reader *reader, int good)
+{
+    if (good)
+        return STATUS_OK;
+    const char *file = config_error_file(&reader->config);
+    problems_add(
+        reader->problems, file ? file : reader->path, (unsigned)config_error_line(&reader->config), "", "%s",
+        config_error_type(&reader->config) == CONFIG_ERR_PARSE ? config_error_text(&reader->config)
+                                                               : "cannot be read as a settings file");
+    return STATUS_BAD_FORMAT;
+}
+
 enum status reader_open(struct reader *reader, const char *path, struct problems *problems,
                         struct text *effective)
 {
@@ -42,14 +54,15 @@ enum status reader_open(struct reader *reader, const char *path, struct problems
         problems_add(problems, path, 0, "", "cannot be read (%m)");
         return STATUS_NOT_FOUND;
     }
-    if (config_read_file(&reader->config, path))
-        return STATUS_OK;
-    const char *file = config_error_file(&reader->config);
-    problems_add(problems, file ? file : path, (unsigned)config_error_line(&reader->config), "", "%s",
-                 config_error_type(&reader->config) == CONFIG_ERR_PARSE
-                     ? config_error_text(&reader->config)
-                     : "cannot be read as a settings file");
-    return STATUS_BAD_FORMAT;
+    return read_result(reader, config_read_file(&reader->config, path));
+}
+
+enum status reader_open_text(struct reader *reader, const char *name, const char *text,
+                             struct problems *problems)
+{
+    *reader = (struct reader){.path = name, .problems = problems, .open = true};
+    config_init(&reader->config);
+    return read_result(reader, config_read_string(&reader->config, text));
 }
 
 void reader_close(struct reader *reader)
@@ -290,22 +303,44 @@ void group_at(struct group_reader *group, const char *key, unsigned i, struct gr
     snprintf(out->name, sizeof out->name, "%.100s[%u]", name, i);
 }
 
+/* Numbers, flags and texts as text; empty after a problem. */
+static void scalar_text(struct group_reader *group, const char *key, const config_setting_t *setting,
+                        char *value, size_t size)
+{
+    double number;
+    if (is_number(setting, &number))
+        snprintf(value, size, "%.15g", number);
+    else if (config_setting_type(setting) == CONFIG_TYPE_BOOL)
+        snprintf(value, size, "%s", config_setting_get_bool(setting) ? "true" : "false");
+    else {
+        *value = '\0';
+        text_fits(group, key, setting, value, size);
+    }
+}
+
+bool group_scalar(struct group_reader *group, const char *key, char *value, size_t size)
+{
+    config_setting_t *member = ask(group, key, READER_OPTIONAL);
+    if (!member || config_setting_is_aggregate(member))
+        return false;
+    scalar_text(group, key, member, value, size);
+    remember(group, key, true, "%s", value);
+    return *value != '\0';
+}
+
+void group_know(struct group_reader *group, const char *key)
+{
+    ask(group, key, READER_OPTIONAL);
+}
+
 bool group_pair(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
                 size_t value_size)
 {
     if (!group->setting || i >= (unsigned)config_setting_length(group->setting))
         return false;
     const config_setting_t *member = config_setting_get_elem(group->setting, i);
-    double number;
     snprintf(key, key_size, "%s", config_setting_name(member));
-    if (is_number(member, &number))
-        snprintf(value, value_size, "%.15g", number);
-    else if (config_setting_type(member) == CONFIG_TYPE_BOOL)
-        snprintf(value, value_size, "%s", config_setting_get_bool(member) ? "true" : "false");
-    else {
-        *value = '\0';
-        text_fits(group, key, member, value, value_size);
-    }
+    scalar_text(group, key, member, value, value_size);
     return true;
 }
 

@@ -44,6 +44,9 @@ struct group_reader {
 /* Opens a file. STATUS_NOT_FOUND or STATUS_BAD_FORMAT after adding the problem. `effective` may be NULL. */
 enum status reader_open(struct reader *reader, const char *path, struct problems *problems,
                         struct text *effective);
+/* The same from text; `name` stands for the path in messages. Both are borrowed until it is closed. */
+enum status reader_open_text(struct reader *reader, const char *name, const char *text,
+                             struct problems *problems);
 void reader_close(struct reader *reader);
 struct group_reader reader_root(struct reader *reader);
 
@@ -72,6 +75,11 @@ void group_at(struct group_reader *group, const char *key, unsigned i, struct gr
  * flags); false after the last. Members read so need no group_done. */
 bool group_pair(struct group_reader *group, unsigned i, char *key, size_t key_size, char *value,
                 size_t value_size);
+
+/* A number, flag or text as text; false where the key is absent or an array, a list or a group. */
+bool group_scalar(struct group_reader *group, const char *key, char *value, size_t size);
+/* The key may be there, whatever it holds. */
+void group_know(struct group_reader *group, const char *key);
 
 /* A problem about a key of this group, at the key's line. */
 void group_problem(struct group_reader *group, const char *key, const char *format, ...)

@@ -290,6 +290,7 @@ enum status site_load(const char *path, struct problems *problems, struct site *
         read_path(&root, out->folder, "ledger", READER_REQUIRED, out->ledger);
         read_path(&root, out->folder, "permit", READER_REQUIRED, out->permit);
         read_path(&root, out->folder, "calls", READER_REQUIRED, out->calls);
+        permit_read_fills(&root, &out->permit_fills);
         group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
         read_pages(&root, out);
         read_evidence(&root, out);

@@ -6,6 +6,7 @@
 #include "base/text.h"
 #include "flow.h"
 #include "level/calibration.h"
+#include "settings/permit.h"
 #include "settings/position.h"
 #include "settings/reader.h"
 #include "settings/source.h"
@@ -52,6 +53,7 @@ struct site {
     char folder[SITE_PATH_SIZE]; /* of the settings file; relative paths start there */
     char ledger[SITE_PATH_SIZE];
     char permit[SITE_PATH_SIZE];
+    struct permit_fills permit_fills; /* what the site states in place of the permit file */
     char calls[SITE_PATH_SIZE]; /* the folder of the call catalogue */
     char address[64];           /* of the pages; loopback unless credentials are set */
     uint32_t port;

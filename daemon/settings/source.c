@@ -29,7 +29,7 @@ void source_settings_read(struct group_reader *root, const char *folder, struct 
     group_number(&group, "level_spread_db", READER_OPTIONAL, 0, 10, &out->level_spread_db);
     group_number(&group, "temperature_c", READER_OPTIONAL, -2, 35, &out->temperature_c);
     group_number(&group, "salinity", READER_OPTIONAL, 0, 42, &out->salinity);
-    group_number(&group, "depth_m", READER_OPTIONAL, 1, 11000, &out->depth_m);
+    out->depth_known = group_number(&group, "depth_m", READER_OPTIONAL, 1, 11000, &out->depth_m);
     group_number(&group, "aperture_m", READER_OPTIONAL, 0, 200, &out->shape.aperture_m);
     group_number(&group, "main_hz", READER_OPTIONAL, 0, 1e6, &out->shape.main_hz);
     group_number(&group, "lobe_deg", READER_OPTIONAL, 0, 90, &out->shape.lobe_deg);

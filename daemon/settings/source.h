@@ -18,7 +18,8 @@ struct source_settings {
     struct place_settings place; /* where it stays */
     enum criterion_sound sound;  /* impulsive or continuous: set, never guessed */
     double loss_n_db, loss_n_spread_db;
-    double temperature_c, salinity, depth_m; /* of the water, for absorption */
+    double temperature_c, salinity, depth_m; /* of the water */
+    bool depth_known; /* it was stated; else a value that absorption can do with */
     double level_spread_db;                  /* standard deviation of calibration and place */
     double scatter_db;                       /* of one impulse about the loss law */
     unsigned n_sets;

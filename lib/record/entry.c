@@ -106,41 +106,61 @@ static enum status call_body(const struct event *event, struct text *out)
     return body_end(&body);
 }
 
-static enum status note_body(const struct event *event, struct text *out)
+/* What no field of a note holds, in the place that the alphabet gives it. */
+static void put_fixed(struct body *body, const struct event *event, const char *name)
 {
     const struct note *note = &event->as.note;
+    if (strcmp(name, "id") == 0)
+        body_id(body, event->run, event->stream, "note", event->counter);
+    else if (strcmp(name, "note") == 0)
+        body_text(body, name, note_kind_text(note->kind));
+    else
+        body_time(body, name, strcmp(name, "known_s") == 0 ? note->known_ns : note->occurred_ns);
+}
+
+static void put_field(struct body *body, const struct note *note, const struct note_field *field)
+{
+    const void *member = (const char *)note + field->offset;
+    switch (field->form) {
+    case NOTE_FORM_TEXT:
+    case NOTE_FORM_WORD:
+        body_text_if_given(body, field->name, member);
+        break;
+    case NOTE_FORM_GROUP:
+        if (note->group != GROUP_UNKNOWN)
+            body_text(body, field->name, group_text(note->group));
+        break;
+    case NOTE_FORM_WHOLE:
+        if (*(const uint32_t *)member != 0)
+            body_integer(body, field->name, *(const uint32_t *)member);
+        break;
+    case NOTE_FORM_NUMBER:
+        body_number_if_given(body, field->name, *(const double *)member, field->decimals);
+        break;
+    case NOTE_FORM_FLAG:
+        if (*(const bool *)member)
+            body_bool(body, field->name, true);
+        break;
+    case NOTE_FORM_TIME: /* occurred_s */
+        break;
+    }
+}
+
+static enum status note_body(const struct event *event, struct text *out)
+{
+    static const char *const fixed[] = {"id", "known_s", "note", "occurred_s"};
+    const size_t n_fixed = sizeof fixed / sizeof fixed[0];
     struct body body;
+    size_t next = 0;
     body_begin(&body, out);
-    body_text_if_given(&body, "advice", note->advice);
-    body_text_if_given(&body, "answer", note->answer);
-    body_number_if_given(&body, "bearing_deg", note->bearing_deg, ROUND_DECIMALS_DEG);
-    if (note->calf)
-        body_bool(&body, "calf", true);
-    if (note->contact != 0)
-        body_integer(&body, "contact", note->contact);
-    body_number_if_given(&body, "distance_m", note->distance_m, ROUND_DECIMALS_M);
-    if (note->group != GROUP_UNKNOWN)
-        body_text(&body, "group", group_text(note->group));
-    body_id(&body, event->run, event->stream, "note", event->counter);
-    body_text_if_given(&body, "impulse", note->impulse);
-    body_text_if_given(&body, "job", note->job);
-    body_time(&body, "known_s", note->known_ns);
-    body_number_if_given(&body, "latitude_deg", note->latitude_deg, ROUND_DECIMALS_POSITION);
-    if (note->leaving)
-        body_bool(&body, "leaving", true);
-    body_number_if_given(&body, "longitude_deg", note->longitude_deg, ROUND_DECIMALS_POSITION);
-    body_text(&body, "note", note_kind_text(note->kind));
-    body_number_if_given(&body, "number", note->number, ROUND_DECIMALS_NUMBER);
-    body_time(&body, "occurred_s", note->occurred_ns);
-    body_text_if_given(&body, "person", note->person);
-    body_number_if_given(&body, "sea_state", note->sea_state, ROUND_DECIMALS_SEA_STATE);
-    body_text_if_given(&body, "source_state", note->source_state);
-    body_text_if_given(&body, "species", note->species);
-    body_text_if_given(&body, "station", note->station);
-    body_text_if_given(&body, "text", note->text);
-    body_text_if_given(&body, "verdict", note->verdict);
-    body_number_if_given(&body, "visibility_m", note->visibility_m, ROUND_DECIMALS_M);
-    body_text_if_given(&body, "watch", note->watch);
+    const struct note_field *field;
+    for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++) {
+        for (; next < n_fixed && strcmp(fixed[next], field->name) < 0; next++)
+            put_fixed(&body, event, fixed[next]);
+        put_field(&body, &event->as.note, field);
+    }
+    for (; next < n_fixed; next++)
+        put_fixed(&body, event, fixed[next]);
     return body_end(&body);
 }
 

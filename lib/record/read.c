@@ -295,34 +295,40 @@ static void read_call(struct reading *reading, struct call *call)
     read_against(reading, call);
 }
 
+static void read_field(struct reading *reading, const struct note_field *field, struct note *note)
+{
+    void *member = (char *)note + field->offset;
+    switch (field->form) {
+    case NOTE_FORM_TEXT:
+    case NOTE_FORM_WORD:
+        reading_text(reading, field->name, false, member, field->size);
+        break;
+    case NOTE_FORM_GROUP:
+        if (json_object_get(reading->root, field->name))
+            note->group = (enum group)read_word(reading, field->name, GROUP_COUNT, group_word);
+        break;
+    case NOTE_FORM_WHOLE:
+        *(uint32_t *)member = reading_count(reading, field->name, false);
+        break;
+    case NOTE_FORM_NUMBER:
+        *(double *)member = reading_number(reading, field->name, false, NAN);
+        break;
+    case NOTE_FORM_FLAG:
+        *(bool *)member = reading_bool(reading, field->name, false);
+        break;
+    case NOTE_FORM_TIME: /* occurred_s */
+        break;
+    }
+}
+
 static void read_note(struct reading *reading, struct note *note)
 {
     note->kind = (enum note_kind)read_word(reading, "note", NOTE_KIND_COUNT, note_word);
     note->occurred_ns = read_time(reading, "occurred_s");
     note->known_ns = read_time(reading, "known_s");
-    reading_text(reading, "person", false, note->person, sizeof note->person);
-    reading_text(reading, "watch", false, note->watch, sizeof note->watch);
-    reading_text(reading, "station", false, note->station, sizeof note->station);
-    reading_text(reading, "species", false, note->species, sizeof note->species);
-    reading_text(reading, "verdict", false, note->verdict, sizeof note->verdict);
-    reading_text(reading, "answer", false, note->answer, sizeof note->answer);
-    reading_text(reading, "advice", false, note->advice, sizeof note->advice);
-    reading_text(reading, "impulse", false, note->impulse, sizeof note->impulse);
-    reading_text(reading, "job", false, note->job, sizeof note->job);
-    reading_text(reading, "source_state", false, note->source_state, sizeof note->source_state);
-    reading_text(reading, "text", false, note->text, sizeof note->text);
-    if (json_object_get(reading->root, "group"))
-        note->group = (enum group)read_word(reading, "group", GROUP_COUNT, group_word);
-    note->contact = reading_count(reading, "contact", false);
-    note->number = reading_number(reading, "number", false, NAN);
-    note->distance_m = reading_number(reading, "distance_m", false, NAN);
-    note->bearing_deg = reading_number(reading, "bearing_deg", false, NAN);
-    note->sea_state = reading_number(reading, "sea_state", false, NAN);
-    note->visibility_m = reading_number(reading, "visibility_m", false, NAN);
-    note->calf = reading_bool(reading, "calf", false);
-    note->leaving = reading_bool(reading, "leaving", false);
-    note->latitude_deg = reading_number(reading, "latitude_deg", false, NAN);
-    note->longitude_deg = reading_number(reading, "longitude_deg", false, NAN);
+    const struct note_field *field;
+    for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++)
+        read_field(reading, field, note);
 }
 
 static void read_position(struct reading *reading, struct position *position)

@@ -93,20 +93,16 @@ static void round_call(struct call *call)
 
 static void round_note(struct note *note)
 {
-    char *const texts[] = {note->person,  note->watch,        note->station, note->species,
-                           note->verdict, note->answer,       note->advice,  note->impulse,
-                           note->job,     note->source_state, note->text};
-    for (size_t i = 0; i < sizeof texts / sizeof texts[0]; i++)
-        clean(texts[i]);
     note->occurred_ns = time_round_us(note->occurred_ns);
     note->known_ns = time_round_us(note->known_ns);
-    to(&note->number, ROUND_DECIMALS_NUMBER);
-    to(&note->distance_m, ROUND_DECIMALS_M);
-    to(&note->bearing_deg, ROUND_DECIMALS_DEG);
-    to(&note->sea_state, ROUND_DECIMALS_SEA_STATE);
-    to(&note->visibility_m, ROUND_DECIMALS_M);
-    to(&note->latitude_deg, ROUND_DECIMALS_POSITION);
-    to(&note->longitude_deg, ROUND_DECIMALS_POSITION);
+    const struct note_field *field;
+    for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++) {
+        char *member = (char *)note + field->offset;
+        if (field->form == NOTE_FORM_TEXT || field->form == NOTE_FORM_WORD)
+            clean(member);
+        else if (field->form == NOTE_FORM_NUMBER)
+            to((double *)member, field->decimals);
+    }
 }
 
 static void round_position(struct position *position)

@@ -98,7 +98,8 @@ const struct schema_object views_schema[] = {
         COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number") COLUMN("calf")
         COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN("verdict") COLUMN("advice")
         COLUMN("answer") COLUMN("impulse") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
-        COLUMN("text") COLUMN("latitude_deg") COLUMN("longitude_deg")),
+        COLUMN("text") COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("depth_m")
+        COLUMN("minutes") COLUMN("energy_kj") COLUMN("elements")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
         COLUMN("end_s") COLUMN("cause")),

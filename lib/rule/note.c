@@ -8,26 +8,23 @@
 #include <string.h>
 
 static const char *const kind_words[NOTE_KIND_COUNT] = {
-    [NOTE_SIGN_ON] = "sign-on",     [NOTE_SIGN_OFF] = "sign-off",
-    [NOTE_SIGHTING] = "sighting",   [NOTE_DISTANCE] = "distance",
-    [NOTE_VERDICT] = "verdict",     [NOTE_RELEASE] = "release",
-    [NOTE_SOURCE] = "source state", [NOTE_JOB] = "job",
-    [NOTE_WEATHER] = "weather",     [NOTE_QUIETING] = "quieting",
-    [NOTE_OTHER] = "other source",  [NOTE_WHOSE] = "whose",
-    [NOTE_POSITION] = "position",   [NOTE_MARK] = "mark",
-    [NOTE_REMARK] = "remark",       [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
-};
-
-enum field_form { FIELD_TEXT, FIELD_WORD, FIELD_GROUP, FIELD_WHOLE, FIELD_NUMBER, FIELD_FLAG, FIELD_TIME };
-
-struct field {
-    const char *name;
-    enum field_form form;
-    size_t offset, size;      /* of the member; size of texts */
-    double min, max;          /* of numbers */
-    int decimals;             /* of numbers: how they are rounded */
-    const char *const *words; /* of FIELD_WORD, ended by NULL */
-    const char *allowed;      /* in words, for people */
+    [NOTE_SIGN_ON] = "sign-on",
+    [NOTE_SIGN_OFF] = "sign-off",
+    [NOTE_SIGHTING] = "sighting",
+    [NOTE_DISTANCE] = "distance",
+    [NOTE_VERDICT] = "verdict",
+    [NOTE_RELEASE] = "release",
+    [NOTE_SOURCE] = "source state",
+    [NOTE_JOB] = "job",
+    [NOTE_WEATHER] = "weather",
+    [NOTE_QUIETING] = "quieting",
+    [NOTE_OTHER] = "other source",
+    [NOTE_DETERRENT] = "deterrent",
+    [NOTE_WHOSE] = "whose",
+    [NOTE_POSITION] = "position",
+    [NOTE_MARK] = "mark",
+    [NOTE_REMARK] = "remark",
+    [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
 
 static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
@@ -38,68 +35,68 @@ static const char *const source_words[] = {"off",   "soft start", "full power", 
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
 #define TEXT(member)                                                                                         \
-    .name = #member, .form = FIELD_TEXT, .offset = offsetof(struct note, member),                            \
+    .name = #member, .form = NOTE_FORM_TEXT, .offset = offsetof(struct note, member),                        \
     .size = sizeof(((struct note *)0)->member)
 #define WORD(member, list)                                                                                   \
-    .name = #member, .form = FIELD_WORD, .offset = offsetof(struct note, member),                            \
+    .name = #member, .form = NOTE_FORM_WORD, .offset = offsetof(struct note, member),                        \
     .size = sizeof(((struct note *)0)->member), .words = list
 #define NUMBER(member, low, high, places)                                                                    \
-    .name = #member, .form = FIELD_NUMBER, .offset = offsetof(struct note, member), .min = low, .max = high, \
-    .decimals = places
+    .name = #member, .form = NOTE_FORM_NUMBER, .offset = offsetof(struct note, member), .min = low,          \
+    .max = high, .decimals = places
 #define OTHER(member, kind) .name = #member, .form = kind, .offset = offsetof(struct note, member)
 
 #define NAME_ALLOWED "at most 63 bytes, no control characters"
 
-static const struct field fields[] = {
-    {TEXT(person), .allowed = NAME_ALLOWED},
-    {WORD(watch, watch_words), .allowed = "visual, acoustic, crew"},
-    {TEXT(station), .allowed = NAME_ALLOWED},
-    {TEXT(species), .allowed = NAME_ALLOWED},
-    {WORD(verdict, verdict_words), .allowed = "confirm, dismiss, left"},
-    {WORD(answer, answer_words), .allowed = "seen, passed, stopped, declined (acknowledgement); open, close "
-                                            "(job); on, off (quieting, other source); "
-                                            "ours, other (whose)"},
+/* By name, as an entry lists them. */
+static const struct note_field fields[] = {
     {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
+    {WORD(answer, answer_words), .allowed = "seen, passed, stopped, declined (acknowledgement); open, close "
+                                            "(job); on, off (quieting, deterrent, other source); "
+                                            "ours, other (whose)"},
+    {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
+    {OTHER(calf, NOTE_FORM_FLAG), .allowed = "true, false"},
+    {OTHER(contact, NOTE_FORM_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
+    {NUMBER(depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
+    {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {NUMBER(elements, 0, 1000, 0), .allowed = "0 to 1000 elements"},
+    {NUMBER(energy_kj, 0, 100000, 1), .allowed = "0 to 100000 kJ"},
+    {OTHER(group, NOTE_FORM_GROUP),
+     .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
+                "sirenian, sea otter, turtle"},
     {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
     {.name = "job",
-     .form = FIELD_TEXT,
+     .form = NOTE_FORM_TEXT,
      .offset = offsetof(struct note, job),
      .size = IMPULSE_JOB_SIZE,
      .allowed = "at most 31 bytes, no control characters"},
-    {WORD(source_state, source_words),
-     .allowed = "off, soft start, full power, hold, reduced, stopped, vibro, drilling, line turn, test"},
-    {TEXT(text), .allowed = "at most 255 bytes, no control characters"},
-    {OTHER(group, FIELD_GROUP),
-     .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
-                "sirenian, sea otter, turtle"},
-    {OTHER(contact, FIELD_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
-    {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
-    {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
-    {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
-    {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
-    {NUMBER(visibility_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
     {NUMBER(latitude_deg, -90, 90, ROUND_DECIMALS_POSITION), .allowed = "-90 to 90 degrees, north positive"},
+    {OTHER(leaving, NOTE_FORM_FLAG), .allowed = "true, false"},
     {NUMBER(longitude_deg, -180, 180, ROUND_DECIMALS_POSITION),
      .allowed = "-180 to 180 degrees, east positive"},
-    {OTHER(calf, FIELD_FLAG), .allowed = "true, false"},
-    {OTHER(leaving, FIELD_FLAG), .allowed = "true, false"},
-    {OTHER(occurred_ns, FIELD_TIME), .allowed = "watch time in nanoseconds, not before 0"},
+    {NUMBER(minutes, 0, 10080, 2), .allowed = "0 to 10080 minutes"},
+    {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
+    {OTHER(occurred_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
+    {TEXT(person), .allowed = NAME_ALLOWED},
+    {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
+    {WORD(source_state, source_words),
+     .allowed = "off, soft start, full power, hold, reduced, stopped, vibro, drilling, line turn, test"},
+    {TEXT(species), .allowed = NAME_ALLOWED},
+    {TEXT(station), .allowed = NAME_ALLOWED},
+    {TEXT(text), .allowed = "at most 255 bytes, no control characters"},
+    {WORD(verdict, verdict_words), .allowed = "confirm, dismiss, left"},
+    {NUMBER(visibility_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {WORD(watch, watch_words), .allowed = "visual, acoustic, crew"},
 };
 
 void note_reset(struct note *note, enum note_kind kind)
 {
-    *note = (struct note){.kind = kind,
-                          .group = GROUP_UNKNOWN,
-                          .number = NAN,
-                          .distance_m = NAN,
-                          .bearing_deg = NAN,
-                          .sea_state = NAN,
-                          .visibility_m = NAN,
-                          .latitude_deg = NAN,
-                          .longitude_deg = NAN};
+    *note = (struct note){.kind = kind, .group = GROUP_UNKNOWN};
+    for (size_t i = 0; i < sizeof fields / sizeof fields[0]; i++)
+        if (fields[i].form == NOTE_FORM_NUMBER)
+            *(double *)((char *)note + fields[i].offset) = NAN;
 }
 
-static enum status set_text(const struct field *field, const char *value, char *out)
+static enum status set_text(const struct note_field *field, const char *value, char *out)
 {
     size_t length = strlen(value);
     if (length >= field->size)
@@ -111,7 +108,7 @@ static enum status set_text(const struct field *field, const char *value, char *
     return STATUS_OK;
 }
 
-static enum status set_word(const struct field *field, const char *value, char *out)
+static enum status set_word(const struct note_field *field, const char *value, char *out)
 {
     for (const char *const *word = field->words; *word; word++)
         if (strcmp(value, *word) == 0)
@@ -146,7 +143,7 @@ static enum status read_whole(const char *value, int64_t min, int64_t max, int64
     return STATUS_OK;
 }
 
-static enum status set_number(const struct field *field, const char *value, double *out)
+static enum status set_number(const struct note_field *field, const char *value, double *out)
 {
     double number;
     enum status status = read_number(value, field->min, field->max, &number);
@@ -164,34 +161,39 @@ static enum status set_flag(const char *value, bool *out)
     return STATUS_OK;
 }
 
-static enum status set_field(const struct field *field, const char *value, struct note *note)
+static enum status set_field(const struct note_field *field, const char *value, struct note *note)
 {
     void *member = (char *)note + field->offset;
     int64_t whole;
     enum status status;
     switch (field->form) {
-    case FIELD_TEXT:
+    case NOTE_FORM_TEXT:
         return set_text(field, value, member);
-    case FIELD_WORD:
+    case NOTE_FORM_WORD:
         return set_word(field, value, member);
-    case FIELD_GROUP:
+    case NOTE_FORM_GROUP:
         return group_from_text(value, &note->group) ? STATUS_OK : STATUS_OUT_OF_RANGE;
-    case FIELD_WHOLE:
+    case NOTE_FORM_WHOLE:
         status = read_whole(value, (int64_t)field->min, (int64_t)field->max, &whole);
         if (status == STATUS_OK)
             note->contact = (uint32_t)whole;
         return status;
-    case FIELD_NUMBER:
+    case NOTE_FORM_NUMBER:
         return set_number(field, value, member);
-    case FIELD_FLAG:
+    case NOTE_FORM_FLAG:
         return set_flag(value, member);
-    case FIELD_TIME:
+    case NOTE_FORM_TIME:
         status = read_whole(value, 0, INT64_MAX, &whole);
         if (status == STATUS_OK)
             note->occurred_ns = whole;
         return status;
     }
     return STATUS_BUG;
+}
+
+const struct note_field *note_field_at(unsigned i)
+{
+    return i < sizeof fields / sizeof fields[0] ? &fields[i] : NULL;
 }
 
 enum status note_set(struct note *note, const char *field, const char *value, const char **out_allowed)
@@ -213,7 +215,8 @@ static const char *missing_of_answer(const struct note *note)
     bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
     bool of_whose = strcmp(note->answer, "ours") == 0 || strcmp(note->answer, "other") == 0;
     bool good = *note->answer && of_job == (note->kind == NOTE_JOB) &&
-                of_quieting == (note->kind == NOTE_QUIETING || note->kind == NOTE_OTHER) &&
+                of_quieting == (note->kind == NOTE_QUIETING || note->kind == NOTE_OTHER ||
+                                note->kind == NOTE_DETERRENT) &&
                 of_whose == (note->kind == NOTE_WHOSE);
     return good ? NULL : "answer";
 }
@@ -253,6 +256,7 @@ static const char *missing_of(const struct note *note)
     case NOTE_JOB:
         return !*note->job ? "job" : missing_of_answer(note);
     case NOTE_QUIETING:
+    case NOTE_DETERRENT:
         return missing_of_answer(note);
     case NOTE_OTHER:
         return !*note->text ? "text" : missing_of_answer(note);

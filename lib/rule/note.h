@@ -20,14 +20,15 @@ enum note_kind {
     NOTE_RELEASE,         /* person: the named observer allows the start */
     NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer (seen | passed | stopped | declined) [text]
                            */
-    NOTE_SOURCE,   /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
-    NOTE_JOB,      /* job, answer (open | close) */
-    NOTE_WEATHER,  /* sea_state, visibility_m */
-    NOTE_QUIETING, /* answer (on | off): a quieting measure is at work or not; text: which, e.g. bubble
-                      curtain */
-    NOTE_WHOSE,    /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
-                      occurred_ns on; all of it in the job where that is not given */
-    NOTE_POSITION, /* latitude_deg, longitude_deg of the source */
+    NOTE_SOURCE,    /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
+    NOTE_JOB,       /* job, answer (open | close) */
+    NOTE_WEATHER,   /* sea_state, visibility_m, depth_m: any of them */
+    NOTE_QUIETING,  /* answer (on | off): a quieting measure is at work or not; text: which, e.g. bubble
+                       curtain */
+    NOTE_DETERRENT, /* answer (on | off): the deterrent works or not */
+    NOTE_WHOSE,     /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
+                       occurred_ns on; all of it in the job where that is not given */
+    NOTE_POSITION,  /* latitude_deg, longitude_deg of the source */
     NOTE_OTHER,  /* text (name of another source in the settings), answer (on | off): whether it is at work */
     NOTE_MARK,   /* text */
     NOTE_REMARK, /* text */
@@ -56,10 +57,39 @@ struct note {
     double bearing_deg;
     double sea_state;
     double visibility_m;
+    double depth_m;                     /* of the water at the source */
+    double minutes;                     /* how long something is expected to last, or lasted */
+    double energy_kj;                   /* of the hammer */
+    double elements;                    /* of the array that are active */
     double latitude_deg, longitude_deg; /* WGS84, north and east positive */
     bool calf;
     bool leaving; /* seen leaving the zone */
 };
+
+enum note_form {
+    NOTE_FORM_TEXT,
+    NOTE_FORM_WORD,
+    NOTE_FORM_GROUP,
+    NOTE_FORM_WHOLE,
+    NOTE_FORM_NUMBER,
+    NOTE_FORM_FLAG,
+    NOTE_FORM_TIME
+};
+
+/* A field of a note: what it may hold, and where. Whatever writes, reads, rounds or asks for notes goes by
+ * these, so that another field is one more of them. */
+struct note_field {
+    const char *name;
+    enum note_form form;
+    size_t offset, size;      /* of the member; size of texts */
+    double min, max;          /* of numbers */
+    int decimals;             /* of numbers: how they are rounded */
+    const char *const *words; /* of NOTE_FORM_WORD, ended by NULL */
+    const char *allowed;      /* in words, for people */
+};
+
+/* The i-th, in alphabetical order; NULL after the last. */
+const struct note_field *note_field_at(unsigned i);
 
 /* An empty note of a kind: texts "", numbers NAN, times 0. */
 void note_reset(struct note *note, enum note_kind kind);

@@ -32,10 +32,23 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->run = 1;
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
+    watch->deterrent.on_ns = watch->deterrent.off_ns = -1;
     source_reset(&watch->source);
     ranges_reset(&watch->ranges, &setup->ranges);
+    surroundings_reset(&watch->surroundings, setup->permit);
+    watch->surroundings.depth_m = setup->depth_m > 0 ? setup->depth_m : NAN;
+    if (setup->ranges.has_source) {
+        watch->surroundings.latitude_deg = setup->ranges.latitude_deg;
+        watch->surroundings.longitude_deg = setup->ranges.longitude_deg;
+    }
     *out = watch;
     return STATUS_OK;
+}
+
+void watch_set_clock(struct watch *watch, int64_t zero_unix_ns)
+{
+    watch->surroundings.has_clock = true;
+    watch->surroundings.zero_unix_ns = zero_unix_ns;
 }
 
 void watch_destroy(struct watch *watch)
@@ -50,6 +63,7 @@ static void settle(struct watch *watch)
 {
     contact_expire(watch);
     source_settle(watch);
+    conditions_settle(watch);
     phase_settle(watch);
     advice_settle(watch);
 }
@@ -61,6 +75,8 @@ static int64_t next_due_ns(const struct watch *watch)
         due = source_due_ns(watch);
     if (contact_due_ns(watch) < due)
         due = contact_due_ns(watch);
+    if (conditions_due_ns(watch) < due)
+        due = conditions_due_ns(watch);
     return due;
 }
 

@@ -14,7 +14,7 @@
 #include <stdint.h>
 
 #define WATCH_MAX_PEOPLE 16
-#define WATCH_MAX_TIMERS 12
+#define WATCH_MAX_TIMERS 20
 #define WATCH_MAX_CONTACTS 64
 #define WATCH_MAX_ADVICE 32
 #define WATCH_MAX_STREAMS 8
@@ -39,6 +39,8 @@ struct watch_setup {
     /* Where source and channels are, and what moves; all zeros: the watch says nothing of ranges, and those
      * above hold. */
     struct ranges_setup ranges;
+    double depth_m;              /* of the water at the source until a note says another; 0: unknown */
+    double source_half_length_m; /* from the source's middle to its edge; 0: a point */
 };
 
 struct watch;
@@ -46,6 +48,9 @@ struct watch;
 /* STATUS_BAD_ARGUMENT when the permit fails permit_check; STATUS_NO_MEMORY. The caller owns *out. */
 enum status watch_create(const struct watch_setup *setup, struct watch **out);
 void watch_destroy(struct watch *watch);
+
+/* The UTC of watch time zero, before the first event: without it nobody knows when the sun is up. */
+void watch_set_clock(struct watch *watch, int64_t zero_unix_ns);
 
 /* Takes one event whose known_ns is not before the watch's time; first lets time pass to it. The event itself
  * goes out as the first outcome of its time, completed. STATUS_BAD_ARGUMENT: time would run backwards. A note

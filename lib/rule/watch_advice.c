@@ -32,14 +32,23 @@ static void need_start(const struct watch *watch, struct wanted *wanted)
         need(wanted, text);
     }
     if (!effort_complete(watch)) {
-        snprintf(text, sizeof text, "a complete pre-watch of %g min", watch->permit->pre_watch_minutes);
+        snprintf(text, sizeof text, "a complete pre-watch of %g min", effort_pre_watch(watch)->minutes);
         need(wanted, text);
+    }
+    struct why why;
+    int64_t until_ns = -1, last_ns = watch->now_ns;
+    for (unsigned i = 0; conditions_hold(watch, i, &why, &until_ns); i++) {
+        snprintf(text, sizeof text, "an end of this: %.120s", why.text);
+        need(wanted, text);
+        last_ns = until_ns < 0 || last_ns < 0 ? -1 : until_ns > last_ns ? until_ns : last_ns;
     }
     need(wanted, "a release by a named observer");
     need(wanted, "a soft start");
     if (watch->phase == PHASE_POST_WATCH && ready_ns >= 0 && source_break_over_ns(watch) > ready_ns)
         ready_ns = source_break_over_ns(watch);
-    bool known = ready_ns >= 0 && effort_kept(watch, NULL);
+    bool known = ready_ns >= 0 && last_ns >= 0 && effort_kept(watch, NULL);
+    if (last_ns > ready_ns)
+        ready_ns = last_ns;
     wanted->until_ns = !known ? -1 : clear_ns > ready_ns ? clear_ns : ready_ns;
 }
 
@@ -51,7 +60,8 @@ static void ground_contact(const struct watch *watch, struct wanted *wanted, con
     wanted->key.contact = contact->number;
     wanted->key.confirmed = contact->confirmed || (contact->vouched && contact->sure);
     contact_describe(contact, watch->permit, watch->now_ns, text);
-    bool or_hold = wanted->key.word == ADVICE_HOLD_POWER && watch->permit->stop_if_possible_else_hold;
+    bool or_hold =
+        wanted->key.word == ADVICE_HOLD_POWER && watch->permit->soft_start.stop_if_possible_else_hold;
     why_reset(&wanted->why, zone ? zone->clause : "", "%s%s",
               or_hold ? "stop if possible, otherwise do not increase power: " : "", text);
     if (!contact->where.known && zone)
@@ -114,14 +124,21 @@ static bool is_blind(const struct watch *watch, struct wanted *wanted, enum advi
 
 static void want_while_sounding(const struct watch *watch, const struct contact *lead, struct wanted *wanted)
 {
-    const char *clause = watch->permit->soft_start_clause;
-    enum permit_action unallowed = watch->source.unallowed;
+    const char *clause = watch->permit->soft_start.clause;
+    struct why asked;
+    enum permit_action unallowed = watch->source.unallowed, condition = conditions_ask(watch, &asked);
     if (unallowed > ACTION_LOG && (!lead || contact_wanted(watch, lead) < unallowed)) {
         ground(wanted, watch, word_of(unallowed), GROUND_UNALLOWED, watch->permit->pre_watch_clause,
                watch->source.unallowed_why);
         if (unallowed == ACTION_HOLD)
             need(wanted, "a release by a named observer");
         else
+            need_start(watch, wanted);
+    } else if (condition > ACTION_LOG && (!lead || contact_wanted(watch, lead) < condition)) {
+        ground(wanted, watch, word_of(condition), GROUND_CONDITION, asked.clause, asked.text);
+        for (uint32_t i = 0; i < asked.n_causes; i++)
+            why_add_cause(&wanted->why, asked.causes[i]);
+        if (condition == ACTION_STOP)
             need_start(watch, wanted);
     } else if (lead) {
         wanted->key.word = word_of(contact_wanted(watch, lead));
@@ -161,9 +178,9 @@ static void want_in_break(const struct watch *watch, const struct contact *lead,
         return;
     }
     snprintf(text, sizeof text, "the zone is clear: the source may resume while the silence is %s %g min",
-             watch->permit->break_limit_resumes ? "at most" : "less than", watch->permit->break_minutes);
+             source_break(watch)->limit_included ? "at most" : "less than", source_break(watch)->minutes);
     ground(wanted, watch, ADVICE_RESUME, GROUND_BREAK, watch->permit->break_clause, text);
-    wanted->until_ns = watch->source.quiet_ns + time_from_s(watch->permit->break_minutes * 60);
+    wanted->until_ns = watch->source.quiet_ns + time_from_s(source_break(watch)->minutes * 60);
 }
 
 static void want_ready(const struct watch *watch, struct wanted *wanted)
@@ -186,8 +203,25 @@ static void want_ready(const struct watch *watch, struct wanted *wanted)
     need(wanted, "a soft start");
 }
 
+/* All is complete but a condition of the permit. */
+static bool want_condition(const struct watch *watch, struct wanted *wanted)
+{
+    struct why why;
+    int64_t until_ns;
+    bool waits = watch->phase == PHASE_PRE_WATCH || watch->phase == PHASE_DETERRENT;
+    if (!waits || !effort_complete(watch) || !conditions_hold(watch, 0, &why, &until_ns))
+        return false;
+    ground(wanted, watch, ADVICE_DO_NOT_START, GROUND_CONDITION, why.clause, why.text);
+    for (uint32_t i = 0; i < why.n_causes; i++)
+        why_add_cause(&wanted->why, why.causes[i]);
+    need_start(watch, wanted);
+    return true;
+}
+
 static void want_not_ready(const struct watch *watch, struct wanted *wanted)
 {
+    if (want_condition(watch, wanted))
+        return;
     char text[FLOW_TEXT_SIZE];
     const char *missing = "";
     bool kept = effort_kept(watch, &missing);

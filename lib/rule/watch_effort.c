@@ -33,10 +33,15 @@ bool effort_anybody(const struct watch *watch)
     return anybody_as(watch, "visual") || anybody_as(watch, "acoustic");
 }
 
+const struct permit_pre_watch *effort_pre_watch(const struct watch *watch)
+{
+    return permit_pre_watch_at(watch->permit, watch->surroundings.depth_m);
+}
+
 bool effort_kept(const struct watch *watch, const char **out_missing)
 {
-    bool visual = !watch->permit->pre_watch_visual || anybody_as(watch, "visual");
-    bool acoustic = !watch->permit->pre_watch_acoustic || anybody_as(watch, "acoustic");
+    bool visual = !effort_pre_watch(watch)->visual || anybody_as(watch, "visual");
+    bool acoustic = !effort_pre_watch(watch)->acoustic || anybody_as(watch, "acoustic");
     const char *missing = visual && acoustic ? ""
                           : visual           ? "no acoustic observer is on watch"
                           : acoustic         ? "no visual observer is on watch"
@@ -96,14 +101,14 @@ void effort_sign_off(struct watch *watch, const struct note *note)
 
 int64_t effort_needed_ns(const struct watch *watch)
 {
-    return time_from_s(watch->permit->pre_watch_minutes * 60);
+    return time_from_s(effort_pre_watch(watch)->minutes * 60);
 }
 
 static int64_t hole_limit_ns(const struct watch *watch)
 {
     double minutes = watch->permit->pre_watch_hole_minutes;
     if (!(minutes > 0))
-        minutes = watch->permit->break_minutes;
+        minutes = source_break(watch)->minutes;
     return minutes < 1e6 ? time_from_s(minutes * 60) : INT64_MAX / 4;
 }
 
@@ -223,7 +228,7 @@ void effort_unheard(struct watch *watch, const struct event *event)
     for (uint32_t i = 0; i < newly.n; i++)
         spans_add(&effort->deaf, newly.all[i].start_ns, newly.all[i].end_ns);
     flow_id(event->run, event->stream, "unheard", event->counter, effort->deaf_id);
-    if (watch->permit->pre_watch_acoustic)
+    if (effort_pre_watch(watch)->acoustic)
         take_back(watch, &newly);
 }
 
@@ -237,7 +242,7 @@ static const struct span *last_deaf(const struct watch *watch)
 bool effort_deaf(const struct watch *watch)
 {
     const struct span *last = last_deaf(watch);
-    return watch->permit->pre_watch_acoustic && last && watch->now_ns < last->end_ns + NEXT_PIECE_NS;
+    return effort_pre_watch(watch)->acoustic && last && watch->now_ns < last->end_ns + NEXT_PIECE_NS;
 }
 
 static void earlier(int64_t *due, int64_t now_ns, int64_t at_ns)

@@ -9,6 +9,7 @@
  *   watch_effort.c   who is on watch, what was heard, how much of the pre-watch is done
  *   watch_phase.c    the table of phases and triggers, and the reasons
  *   watch_advice.c   what each station is told
+ *   watch_conditions.c  the conditions beside pre-watch and zones, each a file condition_NAME.c
  *   watch_say.c      outcomes and their ids
  *   watch_view.c     what people see
  */
@@ -18,6 +19,7 @@
 #include "rule/blows.h"
 #include "rule/contact.h"
 #include "rule/spans.h"
+#include "rule/surroundings.h"
 #include "rule/watch.h"
 #include "rule/whose.h"
 
@@ -88,6 +90,19 @@ struct heard {
     bool named;  /* it is of the train that a note is about, which is being taken */
 };
 
+/* condition_deterrent.c: when it was last switched on, and off since; -1 */
+struct deterrent {
+    int64_t on_ns, off_ns;
+    bool too_long; /* a finding about the present time has been made */
+    char id[FLOW_ID_SIZE];
+};
+
+/* condition_quieting.c */
+struct quieting_state {
+    bool on;
+    char id[FLOW_ID_SIZE];
+};
+
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
 
 /* Why an advice is given; with word, contact and confirmed it says whether it is the same advice. */
@@ -104,7 +119,8 @@ enum advice_ground {
     GROUND_UNALLOWED,
     GROUND_BREAK,
     GROUND_STOPPED,
-    GROUND_ENDED
+    GROUND_ENDED,
+    GROUND_CONDITION
 };
 
 struct advice_key {
@@ -140,6 +156,9 @@ struct watch {
     uint64_t n_heard;    /* in all */
     uint64_t job_heard;  /* of them before the job */
     struct contacts contacts;
+    struct surroundings surroundings;
+    struct deterrent deterrent;
+    struct quieting_state quieting;
 
     struct advice_key keys[STATION_COUNT];
     uint32_t n_advice; /* newest first */
@@ -170,6 +189,8 @@ void effort_sign_off(struct watch *watch, const struct note *note);
 void effort_unheard(struct watch *watch, const struct event *event);
 /* Whether nothing has been heard for so long that nothing can be said, where the permit needs ears. */
 bool effort_deaf(const struct watch *watch);
+/* The row of the pre-watch that is in force: by the depth. */
+const struct permit_pre_watch *effort_pre_watch(const struct watch *watch);
 int64_t effort_needed_ns(const struct watch *watch);
 bool effort_complete(const struct watch *watch);
 void effort_accrue(struct watch *watch, int64_t to_ns); /* lets time pass */
@@ -192,11 +213,28 @@ void source_mark_impulse(struct watch *watch, struct event *event);
 void source_take_impulse(struct watch *watch, const struct event *event);
 void source_settle(struct watch *watch); /* silence, and a soft start that is too long */
 int64_t source_due_ns(const struct watch *watch);
+/* The longest silence after which no pre-watch is needed, by day or in the dark. */
+const struct permit_break *source_break(const struct watch *watch);
 /* The first moment at which silence has been too long for a break. */
 int64_t source_break_over_ns(const struct watch *watch);
 /* A stop for a contact ends by time while the source still sounds: it stays, until the source stops. */
 void source_keep_stop(struct watch *watch, const struct contact *contact);
 void source_enter_phase(struct watch *watch, enum phase from, enum phase to); /* findings, times */
+
+/* watch_conditions.c */
+/* The n-th condition (from 0) that holds a start back now, why and until when at the earliest (-1: unknown);
+ * false where there are no more. */
+bool conditions_hold(const struct watch *watch, unsigned n, struct why *why, int64_t *until_ns);
+/* The strongest that they ask for while the source sounds, and why; ACTION_LOG for nothing. */
+enum permit_action conditions_ask(const struct watch *watch, struct why *why);
+int64_t conditions_due_ns(const struct watch *watch);
+void conditions_take_note(struct watch *watch, const struct note *note);
+void conditions_take_impulse(struct watch *watch, const struct event *event);
+void conditions_enter_phase(struct watch *watch, enum phase from, enum phase to);
+void conditions_settle(struct watch *watch);
+/* The source begins to sound: a finding for each that holds it back. */
+void conditions_judge_start(struct watch *watch);
+void conditions_show(const struct watch *watch, struct watch_view *view);
 
 /* watch_whose.c */
 /* The place of a channel among all; unknown ones share the first's. */

@@ -84,6 +84,7 @@ void note_take(struct watch *watch, const struct note *note)
         note_without_effect(watch, "the note '%s' lacks a good '%s'", note_kind_text(note->kind), lacks);
         return;
     }
+    conditions_take_note(watch, note);
     switch (note->kind) {
     case NOTE_SIGN_ON:
         effort_sign_on(watch, note);
@@ -119,7 +120,8 @@ void note_take(struct watch *watch, const struct note *note)
         take_position(watch, note);
         break;
     case NOTE_WEATHER:
-    case NOTE_QUIETING: /* the tally's */
+    case NOTE_DETERRENT:
+    case NOTE_QUIETING: /* the conditions' and the tally's */
     case NOTE_OTHER:
     case NOTE_MARK:
     case NOTE_REMARK:

@@ -91,7 +91,11 @@ static enum phase before_sound(const struct watch *watch)
         return PHASE_OFF;
     if (contact_holder(watch, false))
         return PHASE_DELAY;
-    return effort_complete(watch) ? PHASE_READY : PHASE_PRE_WATCH;
+    struct why why;
+    int64_t until_ns;
+    if (effort_complete(watch) && !conditions_hold(watch, 0, &why, &until_ns))
+        return PHASE_READY;
+    return watch->deterrent.on_ns >= 0 && watch->deterrent.off_ns < 0 ? PHASE_DETERRENT : PHASE_PRE_WATCH;
 }
 
 static bool order_in_force(const struct watch *watch)
@@ -154,7 +158,7 @@ static void why_ready(const struct watch *watch, struct why *why)
                   names);
     else
         why_reset(why, watch->permit->pre_watch_clause, "the pre-watch of %g min is complete: %.150s",
-                  watch->permit->pre_watch_minutes, names);
+                  effort_pre_watch(watch)->minutes, names);
 }
 
 static void why_pre_watch(const struct watch *watch, struct why *why)
@@ -166,8 +170,8 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
         why_reset(why, watch->permit->pre_watch_clause, "the watch is kept: %.200s", names);
     else if (watch->phase == PHASE_BREAK)
         why_reset(why, watch->permit->break_clause, "the source has been silent for %s %g min",
-                  watch->permit->break_limit_resumes ? "more than" : "at least",
-                  watch->permit->break_minutes);
+                  source_break(watch)->limit_included ? "more than" : "at least",
+                  source_break(watch)->minutes);
     else if (watch->phase == PHASE_POST_WATCH)
         why_reset(why, watch->permit->pre_watch_clause, "the watch goes on after the work: %.200s", names);
     else if (watch->phase == PHASE_READY && effort_kept(watch, &missing))
@@ -203,7 +207,7 @@ static const char *clause_of(const struct watch *watch, enum phase to)
         return zone->clause;
     if (to == PHASE_BREAK || to == PHASE_POST_WATCH)
         return watch->permit->break_clause;
-    return source_sounds(to) ? watch->permit->soft_start_clause : watch->permit->pre_watch_clause;
+    return source_sounds(to) ? watch->permit->soft_start.clause : watch->permit->pre_watch_clause;
 }
 
 static void change(struct watch *watch, enum phase to, const struct why *given)

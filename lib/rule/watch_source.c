@@ -166,7 +166,7 @@ static void find_contradiction(struct watch *watch, bool of_job)
              said);
     char code[NOTE_NAME_SIZE];
     struct why why;
-    why_reset(&why, watch->permit->soft_start_clause,
+    why_reset(&why, watch->permit->soft_start.clause,
               of_job ? "impulses are heard and job %.31s is open, but %s"
                      : "impulses are heard%.0s and no job is open: they may be another project's; %s",
               source->job, what);
@@ -213,6 +213,8 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     int64_t struck_ns = blow_struck_ns(impulse->time_ns, range_m, watch->setup.sound_speed_m_s);
     bool first = blows_add(&source->blows, struck_ns, impulse->whose);
     source->n_impulses += impulse->whose == IMPULSE_OURS && first;
+    if (impulse->whose == IMPULSE_OURS && first)
+        conditions_take_impulse(watch, event);
     source->n_unsaid = source_sounds(watch->phase) || (quiet_said && late) ? 0 : source->n_unsaid + first;
     /* One bang is no source, but for a charge. */
     uint32_t enough = watch->permit->activity == ACTIVITY_EXPLOSIVES ? 1 : 2;
@@ -224,7 +226,7 @@ void source_take_impulse(struct watch *watch, const struct event *event)
         if (of_job && watch->permit->break_watch != BREAK_WATCH_STANDS)
             effort_begin_anew(watch);
         struct why why;
-        why_reset(&why, watch->permit->soft_start_clause, "impulses of job %.31s are heard", source->job);
+        why_reset(&why, watch->permit->soft_start.clause, "impulses of job %.31s are heard", source->job);
         why_add_cause(&why, source->impulse_id);
         if (of_job)
             phase_take(watch, TRIGGER_HEARD, &why);
@@ -232,10 +234,15 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     source->heard_in_phase = source->heard_in_phase || source_sounds(watch->phase);
 }
 
+const struct permit_break *source_break(const struct watch *watch)
+{
+    return permit_last_break(watch->permit, surroundings_dark(&watch->surroundings, watch->now_ns));
+}
+
 int64_t source_break_over_ns(const struct watch *watch)
 {
-    int64_t limit = time_from_s(watch->permit->break_minutes * 60);
-    return watch->source.quiet_ns + limit + (watch->permit->break_limit_resumes ? TIME_NS_PER_US : 0);
+    int64_t limit = time_from_s(source_break(watch)->minutes * 60);
+    return watch->source.quiet_ns + limit + (source_break(watch)->limit_included ? TIME_NS_PER_US : 0);
 }
 
 static int64_t silence_ns(const struct watch *watch)
@@ -245,7 +252,7 @@ static int64_t silence_ns(const struct watch *watch)
 
 static int64_t too_long_ns(const struct watch *watch)
 {
-    double minutes = watch->permit->soft_start_max_minutes;
+    double minutes = watch->permit->soft_start.longest_minutes;
     bool limited = watch->phase == PHASE_SOFT_START && minutes < 1e6 && !watch->source.too_long;
     return limited ? watch->source.soft_start_ns + time_from_s(minutes * 60) + TIME_NS_PER_US : INT64_MAX;
 }
@@ -290,8 +297,8 @@ void source_settle(struct watch *watch)
     if (watch->now_ns >= too_long_ns(watch)) {
         source->too_long = true;
         struct why why;
-        why_reset(&why, watch->permit->soft_start_clause, "the soft start has lasted longer than %g min",
-                  watch->permit->soft_start_max_minutes);
+        why_reset(&why, watch->permit->soft_start.clause, "the soft start has lasted longer than %g min",
+                  watch->permit->soft_start.longest_minutes);
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, "soft start too long", "firm", &why);
     }
@@ -336,7 +343,7 @@ static void judge_start(struct watch *watch, enum phase from)
     } else {
         code = "start without a complete pre-watch";
         why_reset(&why, permit->pre_watch_clause, "the source starts after %.1f of %g min of pre-watch",
-                  time_to_s(watch->effort.credit_ns) / 60, permit->pre_watch_minutes);
+                  time_to_s(watch->effort.credit_ns) / 60, effort_pre_watch(watch)->minutes);
     }
     if (!code)
         return;
@@ -355,13 +362,13 @@ static void judge_full_power(struct watch *watch, enum phase from)
                             (before == PHASE_SOFT_START || before == PHASE_HOLD || before == PHASE_REDUCED);
     int64_t lasted = watch->now_ns - source->soft_start_ns;
     struct why why;
-    if (after_soft_start && lasted < time_from_s(permit->soft_start_min_minutes * 60)) {
-        why_reset(&why, permit->soft_start_clause, "full power after %.1f of at least %g min",
-                  time_to_s(lasted) / 60, permit->soft_start_min_minutes);
+    if (after_soft_start && lasted < time_from_s(permit->soft_start.least_minutes * 60)) {
+        why_reset(&why, permit->soft_start.clause, "full power after %.1f of at least %g min",
+                  time_to_s(lasted) / 60, permit->soft_start.least_minutes);
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, "soft start too short", "firm", &why);
-    } else if (!source_sounds(before) && permit->soft_start_min_minutes > 0) {
-        why_reset(&why, permit->soft_start_clause, "full power without a soft start");
+    } else if (!source_sounds(before) && permit->soft_start.least_minutes > 0) {
+        why_reset(&why, permit->soft_start.clause, "full power without a soft start");
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, "soft start missing", "firm", &why);
     }
@@ -376,8 +383,11 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
         source->unallowed = ACTION_LOG;
         source->unallowed_contact = 0;
     }
-    if (begins && to != PHASE_DRILLING && to != PHASE_LINE_TURN)
+    if (begins && to != PHASE_DRILLING && to != PHASE_LINE_TURN) {
         judge_start(watch, from);
+        if (from != PHASE_BREAK)
+            conditions_judge_start(watch);
+    }
     if (to == PHASE_FULL_POWER)
         judge_full_power(watch, from);
     bool goes_on =
@@ -399,4 +409,5 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
     }
     if (!source_sounds(to) && to != PHASE_BREAK)
         source->soft_start_ns = -1;
+    conditions_enter_phase(watch, from, to);
 }

@@ -38,12 +38,12 @@ static void add_source(const struct watch *watch, struct watch_view *view)
     struct watch_timer *timer = NULL;
     if (source->soft_start_ns >= 0 && source_sounds(watch->phase)) {
         timer = add_timer(view, watch->now_ns - source->soft_start_ns,
-                          time_from_s(watch->permit->soft_start_min_minutes * 60));
+                          time_from_s(watch->permit->soft_start.least_minutes * 60));
         snprintf(timer->name, sizeof timer->name, "soft start");
     }
     if (watch->phase == PHASE_BREAK || watch->phase == PHASE_POST_WATCH) {
         timer =
-            add_timer(view, watch->now_ns - source->quiet_ns, time_from_s(watch->permit->break_minutes * 60));
+            add_timer(view, watch->now_ns - source->quiet_ns, time_from_s(source_break(watch)->minutes * 60));
         snprintf(timer->name, sizeof timer->name, "break");
     }
 }
@@ -97,6 +97,7 @@ void watch_get_view(const struct watch *watch, struct watch_view *out)
     memcpy(out->released_by, watch->released_by, sizeof out->released_by);
     add_pre_watch(watch, out);
     add_source(watch, out);
+    conditions_show(watch, out);
     out->n_people = watch->effort.n_people;
     memcpy(out->people, watch->effort.people, sizeof out->people);
     out->n_contacts = watch->contacts.n;

@@ -255,7 +255,7 @@ static void answer(struct speech *speech)
     struct watch *watch = speech->watch;
     struct source *source = &watch->source;
     struct why why;
-    why_reset(&why, watch->permit->soft_start_clause, "finding %s: impulse %s was another's, says %.60s",
+    why_reset(&why, watch->permit->soft_start.clause, "finding %s: impulse %s was another's, says %.60s",
               source->contradiction, source->contradicting, speech->note->person);
     why_add_cause(&why, source->contradiction);
     why_add_cause(&why, watch->recent.causes[0]);

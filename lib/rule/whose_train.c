@@ -1,6 +1,6 @@
 /* One train of impulses: its interval, its level, and how well an impulse fits it. */
-#include "base/time.h"
 #include "base/median.h"
+#include "base/time.h"
 #include "rule/whose.h"
 #include <math.h>
 #include <stdlib.h>

@@ -369,7 +369,7 @@ int main(int argc, char **argv)
     float_mode_flush_to_zero();
     sound.n_frames = (uint64_t)((argc > 3 ? atof(argv[3]) : 20) * sound.rate_hz);
     if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
-        permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
+        permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK ||
         !bench_render_busy(&sound)) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);
         return 3;

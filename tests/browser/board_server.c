@@ -48,8 +48,8 @@ static struct permit permit = {
     .year = 2026,
     .demonstration = true,
     .activity = ACTIVITY_PILING,
-    .pre_watch_visual = true,
-    .pre_watch_acoustic = true,
+    .n_pre_watches = 1,
+    .pre_watches = {{.minutes = 3, .visual = true, .acoustic = true}},
     .confirm_countdown_s = 30,
     .n_zones = 2,
     .zones =
@@ -57,10 +57,10 @@ static struct permit permit = {
          {.name = "watch zone", .radius_m = 2000, .groups = 1U << GROUP_BALEEN_WHALE, .clause = "4.2"}},
     .n_values = 4,
     .values = {
-        {.key = "pre_watch_minutes", .text = "3", .source = "invented", .mark = MARK_INVENTED},
+        {.key = "pre_watch.minutes", .text = "3", .source = "invented", .mark = MARK_INVENTED},
         {.key = "zone.radius_m", .text = "500", .source = "guideline, paragraph 4", .mark = MARK_READ},
-        {.key = "soft_start_min_minutes", .text = "2", .source = "invented", .mark = MARK_INVENTED},
-        {.key = "break_minutes", .text = "1", .source = "a table seen once", .mark = MARK_MEMORY_LOW}}};
+        {.key = "soft_start.least_minutes", .text = "2", .source = "invented", .mark = MARK_INVENTED},
+        {.key = "break.minutes", .text = "1", .source = "a table seen once", .mark = MARK_MEMORY_LOW}}};
 
 static void add_person(struct server *server, const char *name, const char *watch, const char *station)
 {

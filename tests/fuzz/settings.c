@@ -37,7 +37,7 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         site_load(path, &problems, &site);
         site_destroy(&site);
     } else if (data[0] % 4 == 1)
-        permit_load(path, &problems, &permit);
+        permit_load(path, NULL, &problems, &permit);
     else if (data[0] % 4 == 2) {
         static struct scene_file scene;
         if (scene_load(path, &problems, &scene) == STATUS_OK)

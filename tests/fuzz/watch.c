@@ -90,7 +90,7 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
     struct problems problems = {0};
     struct watch *watch;
     if (permit.n_zones == 0 &&
-        permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK)
+        permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK)
         abort();
     struct watch_setup setup = {.permit = &permit,
                                 .contact_gap_s = 30,

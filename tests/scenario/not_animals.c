@@ -203,7 +203,7 @@ static int load(void **state)
     (void)state;
     struct problems problems = {0};
     return catalogue_load("config/calls", &problems, NULL, &catalogue) == STATUS_OK &&
-                   permit_load("config/permits/demonstration.cfg", &problems, &permit) == STATUS_OK
+                   permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) == STATUS_OK
                ? 0
                : -1;
 }

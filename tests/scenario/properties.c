@@ -20,7 +20,7 @@ static int load_permits(void **state)
         struct problems problems = {0};
         char path[128];
         snprintf(path, sizeof path, "config/permits/%s.cfg", permit_ids[i]);
-        if (permit_load(path, &problems, &permits[i]) != STATUS_OK)
+        if (permit_load(path, NULL, &problems, &permits[i]) != STATUS_OK)
             return -1;
     }
     return 0;
@@ -289,7 +289,7 @@ static void must_hold(const struct oracle *oracle, const struct seen *seen, int6
         return;
     assert_true(kept(oracle));
     assert_true(oracle->released_ns >= 0);
-    assert_true(oracle->kept_ns >= time_from_s(oracle->permit->pre_watch_minutes * 60));
+    assert_true(oracle->kept_ns >= time_from_s(oracle->permit->pre_watches[0].minutes * 60));
 }
 
 static bool restrains(int word)
@@ -325,7 +325,7 @@ static struct seen run_sequence(const struct permit *permit, uint64_t seed, unsi
     uint64_t counters[8] = {0};
     uint32_t run = 1;
     int64_t now_ns = 0;
-    double pace_s = permit->pre_watch_minutes * 60 / 20;
+    double pace_s = permit->pre_watches[0].minutes * 60 / 20;
     for (unsigned i = 0; i < steps; i++) {
         struct event event;
         int64_t from_ns = now_ns;
@@ -412,7 +412,7 @@ static void no_phase_is_dead(void **state)
         uint64_t counter = 0;
         for (unsigned i = 0; i < 60; i++) {
             struct event event;
-            now_ns += time_from_s(permit->pre_watch_minutes * 3 * random_exponential(&random));
+            now_ns += time_from_s(permit->pre_watches[0].minutes * 3 * random_exponential(&random));
             do
                 random_event(&random, now_ns, &event);
             while (event.kind == EVENT_RUN);

@@ -29,7 +29,7 @@ static const struct permit *permit_of(const char *id)
     char path[512];
     struct problems problems = {0};
     snprintf(path, sizeof path, "config/permits/%s.cfg", id);
-    if (n_permits == 16 || permit_load(path, &problems, &permits[n_permits]) != STATUS_OK) {
+    if (n_permits == 16 || permit_load(path, NULL, &problems, &permits[n_permits]) != STATUS_OK) {
         printf("# %s\n", problems.lines.data ? problems.lines.data : path);
         return NULL;
     }

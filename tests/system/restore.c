@@ -477,7 +477,7 @@ int main(void)
 {
     struct problems problems = {0};
     snprintf(path, sizeof path, "%s/restore.%d.ledger", test_build(), (int)getpid());
-    if (permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
+    if (permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK ||
         criteria_load("config/criteria/nmfs-2024.cfg", &problems, NULL, &criteria) != STATUS_OK ||
         criteria_load("config/criteria/behaviour-us.cfg", &problems, NULL, &criteria) != STATUS_OK) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);

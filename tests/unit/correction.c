@@ -367,7 +367,7 @@ static void the_train_is_taken_out_on_both_channels(void **state)
 int main(void)
 {
     struct problems problems = {0};
-    if (permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
+    if (permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK ||
         criteria_load("config/criteria/germany-2008.cfg", &problems, NULL, &criteria) != STATUS_OK ||
         criteria_load("config/criteria/fish-popper-2014.cfg", &problems, NULL, &criteria) != STATUS_OK) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);

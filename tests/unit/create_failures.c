@@ -278,7 +278,7 @@ int main(void)
 {
     struct problems problems = {0};
     if (catalogue_load("config/calls", &problems, NULL, &catalogue) != STATUS_OK ||
-        permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK ||
+        permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK ||
         criteria_load("config/criteria/fish-fhwg-2008.cfg", &problems, NULL, &criteria) != STATUS_OK ||
         scene_load("config/scenes/demonstration.cfg", &problems, &scene) != STATUS_OK) {
         fputs(problems.lines.data ? problems.lines.data : "", stderr);

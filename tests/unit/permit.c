@@ -15,7 +15,7 @@ static void load_good(const char *name)
     char path[128];
     snprintf(path, sizeof path, "config/permits/%s.cfg", name);
     memset(&permit, 0, sizeof permit);
-    enum status status = permit_load(path, &problems, &permit);
+    enum status status = permit_load(path, NULL, &problems, &permit);
     if (status != STATUS_OK)
         fail_msg("%s: %s", path, problems.lines.data);
     problems_destroy(&problems);
@@ -45,10 +45,10 @@ static void every_unusable_permit_is_named(void **state)
     change;                                                                                                  \
     assert_int_equal(count_problems(wanted), 1)
     SPOILED(permit.id[0] = 0, "id");
-    SPOILED(permit.pre_watch_minutes = 0, "pre-watch");
-    SPOILED(permit.pre_watch_minutes = NAN, "pre-watch");
-    SPOILED(permit.pre_watch_minutes = INFINITY, "pre-watch");
-    SPOILED(permit.pre_watch_visual = permit.pre_watch_acoustic = false, "neither");
+    SPOILED(permit.pre_watches[0].minutes = 0, "pre-watch");
+    SPOILED(permit.pre_watches[0].minutes = NAN, "pre-watch");
+    SPOILED(permit.pre_watches[0].minutes = INFINITY, "pre-watch");
+    SPOILED(permit.pre_watches[0].visual = permit.pre_watches[0].acoustic = false, "neither");
     SPOILED(permit.unknown[GROUP_PORPOISE] = UNKNOWN_NOT_STATED, "porpoise");
     SPOILED(permit.zones[0].radius_m = 0, "radius");
     SPOILED(permit.zones[0].origin = (enum zone_origin)9, "no origin");
@@ -60,9 +60,9 @@ static void every_unusable_permit_is_named(void **state)
     SPOILED(permit.clearances[0].minutes = 1e9, "clearance");
     SPOILED(permit.clearances[1] = permit.clearances[0]; permit.clearances[1].groups = 2;
             permit.n_clearances = 2, "two clearance times");
-    SPOILED(permit.soft_start_min_minutes = -1, "soft start");
-    SPOILED(permit.soft_start_max_minutes = 0.1, "soft start");
-    SPOILED(permit.break_minutes = 0, "break");
+    SPOILED(permit.soft_start.least_minutes = -1, "soft start");
+    SPOILED(permit.soft_start.longest_minutes = 0.1, "soft start");
+    SPOILED(permit.breaks[0].minutes = 0, "break");
     SPOILED(permit.confirm_countdown_s = 1e6, "countdown");
     SPOILED(permit.p_inside_prepare = 0.9, "P(inside)");
     SPOILED(permit.values[3].mark = MARK_MEMORY_LOW, "low-confidence");
@@ -72,7 +72,7 @@ static void every_unusable_permit_is_named(void **state)
     assert_int_equal(count_problems("invented"), permit.n_values);
     load_good("demonstration");
     permit.n_zones = 0;
-    permit.break_minutes = -1;
+    permit.breaks[0].minutes = -1;
     permit.title[0] = 0;
     assert_int_equal(count_problems("0 zones"), 3);
 }
@@ -82,7 +82,7 @@ static void uk_piling(void **state)
 {
     (void)state;
     load_good("uk-piling-2010");
-    assert_true(permit.pre_watch_minutes == 30 && permit.pre_watch_visual && permit.pre_watch_acoustic);
+    assert_true(permit.pre_watches[0].minutes == 30 && permit.pre_watches[0].visual && permit.pre_watches[0].acoustic);
     assert_int_equal(permit.n_zones, 1);
     assert_true(permit.zones[0].radius_m == 500 && permit.zones[0].origin == ORIGIN_PILE);
     assert_int_equal(permit.zones[0].groups, PERMIT_ALL_GROUPS & ~PERMIT_GROUP_BIT(GROUP_TURTLE));
@@ -90,9 +90,9 @@ static void uk_piling(void **state)
     assert_int_equal(permit.zones[0].action[PHASE_SOFT_START], ACTION_HOLD);
     assert_int_equal(permit.zones[0].action[PHASE_FULL_POWER], ACTION_LOG);
     assert_true(permit.clearances[0].minutes == 20 && !permit.clearances[0].leaving_ends);
-    assert_true(permit.soft_start_min_minutes == 20 && isinf(permit.soft_start_max_minutes));
-    assert_true(permit.stop_if_possible_else_hold);
-    assert_true(permit.break_minutes == 10 && permit.break_limit_resumes);
+    assert_true(permit.soft_start.least_minutes == 20 && isinf(permit.soft_start.longest_minutes));
+    assert_true(permit.soft_start.stop_if_possible_else_hold);
+    assert_true(permit.breaks[0].minutes == 10 && permit.breaks[0].limit_included);
     assert_int_equal(permit.break_watch, BREAK_WATCH_STANDS);
     assert_int_equal(permit.unknown[GROUP_PORPOISE], UNKNOWN_ASK_OBSERVER);
     assert_true(permit.confirm_countdown_s == 30); /* the program's own, where the permit is silent */
@@ -122,8 +122,8 @@ static void nz_level_1(void **state)
     assert_true(permit.clearances[0].minutes == 30 && permit.clearances[0].leaving_ends);
     assert_int_equal(permit.clearances[1].groups, PERMIT_GROUP_BIT(GROUP_OTARIID));
     assert_true(permit.clearances[1].minutes == 10);
-    assert_true(permit.soft_start_min_minutes == 20 && permit.soft_start_max_minutes == 40);
-    assert_true(permit.break_minutes == 10 && !permit.break_limit_resumes);
+    assert_true(permit.soft_start.least_minutes == 20 && permit.soft_start.longest_minutes == 40);
+    assert_true(permit.breaks[0].minutes == 10 && !permit.breaks[0].limit_included);
     assert_int_equal(permit.unknown[GROUP_PORPOISE], UNKNOWN_INSIDE);
 }
 
@@ -156,7 +156,7 @@ static void all_errors_with_their_lines(void **state)
     fclose(to);
     struct problems problems = {0};
     load_good("uk-piling-2010");
-    assert_int_equal(permit_load(path, &problems, &permit), STATUS_BAD_FORMAT);
+    assert_int_equal(permit_load(path, NULL, &problems, &permit), STATUS_BAD_FORMAT);
     assert_string_equal(permit.id, "uk-piling-2010");
     assert_int_equal(problems.count, 4); /* the typo is a missing key and an unknown one */
     char wanted[160];
@@ -170,12 +170,12 @@ static void all_errors_with_their_lines(void **state)
     problems_destroy(&problems);
     problems = (struct problems){0};
     assert_int_equal(truncate(path, 0), 0); /* an empty file: everything is missing, nothing breaks */
-    assert_int_equal(permit_load(path, &problems, &permit), STATUS_BAD_FORMAT);
+    assert_int_equal(permit_load(path, NULL, &problems, &permit), STATUS_BAD_FORMAT);
     assert_true(problems.count > 8);
     problems_destroy(&problems);
     unlink(path);
     problems = (struct problems){0};
-    assert_int_equal(permit_load(path, &problems, &permit), STATUS_NOT_FOUND);
+    assert_int_equal(permit_load(path, NULL, &problems, &permit), STATUS_NOT_FOUND);
     assert_int_equal(problems.count, 1);
     problems_destroy(&problems);
 }

@@ -104,10 +104,11 @@ static void random_note(struct random *random, struct note *note)
     note_reset(note, (enum note_kind)(random_bits(random) % NOTE_KIND_COUNT));
     note->occurred_ns = random_time(random);
     note->known_ns = random_time(random);
-    char *const texts[] = {note->person, note->watch,  note->station, note->species,     note->verdict,
-                           note->answer, note->advice, note->job,     note->source_state};
+    char *const texts[] = {note->person,  note->watch,  note->station, note->species,
+                           note->verdict, note->answer, note->advice,  note->source_state};
     for (size_t i = 0; i < sizeof texts / sizeof texts[0]; i++)
         random_text(random, texts[i], NOTE_NAME_SIZE);
+    random_text(random, note->job, IMPULSE_JOB_SIZE);
     random_text(random, note->text, NOTE_TEXT_SIZE);
     note->group = (enum group)(random_bits(random) % GROUP_COUNT);
     note->contact = (uint32_t)(random_bits(random) % 5);
@@ -116,6 +117,10 @@ static void random_note(struct random *random, struct note *note)
     note->bearing_deg = maybe(random, 0, 360);
     note->sea_state = maybe(random, 0, 9);
     note->visibility_m = maybe(random, 0, 40000);
+    note->depth_m = maybe(random, 0, 5000);
+    note->minutes = maybe(random, 0, 90);
+    note->energy_kj = maybe(random, 0, 4000);
+    note->elements = maybe(random, 0, 48);
     note->latitude_deg = maybe(random, -90, 90);
     note->longitude_deg = maybe(random, -180, 180);
     note->calf = random_bits(random) % 2;
@@ -245,6 +250,10 @@ static void assert_same_note(const struct note *a, const struct note *b)
     SAME_NUMBER(bearing_deg);
     SAME_NUMBER(sea_state);
     SAME_NUMBER(visibility_m);
+    SAME_NUMBER(depth_m);
+    SAME_NUMBER(minutes);
+    SAME_NUMBER(energy_kj);
+    SAME_NUMBER(elements);
     SAME(calf);
     SAME_NUMBER(latitude_deg);
     SAME_NUMBER(longitude_deg);
@@ -487,7 +496,7 @@ static void marks_are_well_formed(void **state)
     struct permit *permit = calloc(1, sizeof *permit);
     assert_non_null(permit);
     permit->n_values = 2;
-    snprintf(permit->values[0].key, PERMIT_NAME_SIZE, "pre_watch_minutes");
+    snprintf(permit->values[0].key, PERMIT_NAME_SIZE, "pre_watch.minutes");
     assert_int_equal(entry_body_permit(1, 1, permit, "abc", &body), STATUS_OK);
     free(permit);
     assert_well_formed(body.data, "1.0.permit.1");

@@ -131,7 +131,7 @@ static int begin(void **state)
 {
     (void)state;
     struct problems problems = {0};
-    if (permit_load("config/permits/demonstration.cfg", &problems, &permit) != STATUS_OK)
+    if (permit_load("config/permits/demonstration.cfg", NULL, &problems, &permit) != STATUS_OK)
         return -1;
     struct watch_setup setup = good_setup();
     kept.n = 0;

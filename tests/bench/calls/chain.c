@@ -145,7 +145,7 @@ bool chain_create(struct chain *chain, const struct catalogue *catalogue, double
     bool good =
         chain->pascals &&
         pulses_create(catalogue->classes, catalogue->n_classes, rate_hz, &chain->second) == STATUS_OK &&
-        permit_load("config/permits/demonstration.cfg", &problems, &chain->permit) == STATUS_OK &&
+        permit_load("config/permits/demonstration.cfg", NULL, &problems, &chain->permit) == STATUS_OK &&
         listen_create(&listen, &chain->listen) == STATUS_OK &&
         watch_create(&watch, &chain->watch) == STATUS_OK &&
         blocks_create(1, 1, rate_hz, &chain->blocks) == STATUS_OK;
