@@ -203,8 +203,8 @@ static void read_steady(struct permit_reader *reader, struct group_reader *root)
     if (!steady->stated)
         return;
     value_flag(reader, &group, "pre_watch", READER_REQUIRED, &steady->pre_watch);
-    value_number(reader, &group, "direct_minutes", READER_OPTIONAL, 0, LONGEST_MINUTES,
-                 &steady->direct_minutes);
+    value_flag(reader, &group, "stands_for_pre_watch", READER_REQUIRED, &steady->stands);
+    value_flag(reader, &group, "soft_start_after", READER_REQUIRED, &steady->soft_start);
     group_done(&group);
 }
 

@@ -12,6 +12,11 @@ static int64_t floor_divide(int64_t a, int64_t b)
     return (a % b != 0 && (a < 0) != (b < 0)) ? q - 1 : q;
 }
 
+int64_t time_from_minutes(double minutes)
+{
+    return minutes < 1e6 ? time_from_s(minutes * 60) : INT64_MAX / 4;
+}
+
 int64_t time_round_us(int64_t ns)
 {
     return floor_divide(ns + TIME_NS_PER_US / 2, TIME_NS_PER_US) * TIME_NS_PER_US;

@@ -27,6 +27,9 @@ int64_t time_of_frame(const struct time_map *map, uint64_t frame);
 /* Seconds from nanoseconds and back; time_from_s rounds to a whole microsecond. */
 double time_to_s(int64_t ns);
 int64_t time_from_s(double seconds);
+/* The same of minutes; a million of them and more, and INFINITY, are so long that sums with them stay below
+ * INT64_MAX. */
+int64_t time_from_minutes(double minutes);
 
 /* The nearest whole microsecond, in nanoseconds. */
 int64_t time_round_us(int64_t ns);

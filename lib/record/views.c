@@ -99,7 +99,10 @@ const struct schema_object views_schema[] = {
         COLUMN("distance_m") COLUMN("bearing_deg") COLUMN("leaving") COLUMN("verdict") COLUMN("advice")
         COLUMN("answer") COLUMN("impulse") COLUMN("job") COLUMN("source_state") COLUMN("sea_state") COLUMN("visibility_m")
         COLUMN("text") COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("depth_m")
-        COLUMN("minutes") COLUMN("energy_kj") COLUMN("elements")),
+        COLUMN("minutes") COLUMN("energy_kj") COLUMN("elements") COLUMN("reason")
+        COLUMN("job_kind") COLUMN("leg") COLUMN("hammer") COLUMN("sequence") COLUMN("blows")
+        COLUMN("first_point") COLUMN("last_point") COLUMN("charge_kg") COLUMN("donor_kg") COLUMN("refusal")
+        COLUMN("restrike")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
         COLUMN("end_s") COLUMN("cause")),

@@ -24,5 +24,11 @@ struct condition {
 
 extern const struct condition condition_deterrent;
 extern const struct condition condition_quieting;
+extern const struct condition condition_start;
+extern const struct condition condition_outage;
+extern const struct condition condition_turn;
+extern const struct condition condition_test;
+extern const struct condition condition_staff;
+extern const struct condition condition_override;
 
 #endif

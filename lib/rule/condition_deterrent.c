@@ -5,11 +5,6 @@
 #include <stdio.h>
 #include <string.h>
 
-static int64_t minutes_ns(double minutes)
-{
-    return time_from_s(minutes * 60);
-}
-
 static int64_t worked_ns(const struct watch *watch)
 {
     const struct deterrent *deterrent = &watch->deterrent;
@@ -22,13 +17,13 @@ static bool too_long_ago(const struct watch *watch)
 {
     const struct deterrent *deterrent = &watch->deterrent;
     double gap = watch->permit->deterrent.gap_minutes;
-    return deterrent->off_ns >= 0 && gap < 1e6 && watch->now_ns > deterrent->off_ns + minutes_ns(gap);
+    return deterrent->off_ns >= 0 && gap < 1e6 && watch->now_ns > deterrent->off_ns + time_from_minutes(gap);
 }
 
 static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
 {
     const struct permit_deterrent *rule = &watch->permit->deterrent;
-    int64_t needed = minutes_ns(rule->least_minutes), worked = worked_ns(watch);
+    int64_t needed = time_from_minutes(rule->least_minutes), worked = worked_ns(watch);
     if (!rule->stated)
         return false;
     *until_ns = -1;
@@ -54,12 +49,13 @@ static int64_t due_ns(const struct watch *watch)
     if (!rule->stated || deterrent->on_ns < 0)
         return INT64_MAX;
     if (deterrent->off_ns >= 0)
-        return rule->gap_minutes < 1e6 ? deterrent->off_ns + minutes_ns(rule->gap_minutes) + TIME_NS_PER_US
-                                       : INT64_MAX;
-    int64_t enough = deterrent->on_ns + minutes_ns(rule->least_minutes);
+        return rule->gap_minutes < 1e6
+                   ? deterrent->off_ns + time_from_minutes(rule->gap_minutes) + TIME_NS_PER_US
+                   : INT64_MAX;
+    int64_t enough = deterrent->on_ns + time_from_minutes(rule->least_minutes);
     if (enough > watch->now_ns || rule->longest_minutes >= 1e6)
         return enough;
-    return deterrent->on_ns + minutes_ns(rule->longest_minutes) + TIME_NS_PER_US;
+    return deterrent->on_ns + time_from_minutes(rule->longest_minutes) + TIME_NS_PER_US;
 }
 
 static void find(struct watch *watch, const char *code, const struct why *why)
@@ -81,8 +77,8 @@ static void take_note(struct watch *watch, const struct note *note)
         note_without_effect(watch, "the deterrent is %s already", on ? "on" : "off");
         return;
     }
-    bool too_soon =
-        on && deterrent->off_ns >= 0 && watch->now_ns < deterrent->off_ns + minutes_ns(rule->again_minutes);
+    bool too_soon = on && deterrent->off_ns >= 0 &&
+                    watch->now_ns < deterrent->off_ns + time_from_minutes(rule->again_minutes);
     memcpy(deterrent->id, watch->recent.causes[0], sizeof deterrent->id);
     if (too_soon) {
         why_reset(&why, rule->clause,
@@ -111,7 +107,7 @@ static void settle(struct watch *watch)
     struct deterrent *deterrent = &watch->deterrent;
     struct why why;
     if (!rule->stated || deterrent->too_long || deterrent->on_ns < 0 || deterrent->off_ns >= 0 ||
-        rule->longest_minutes >= 1e6 || worked_ns(watch) <= minutes_ns(rule->longest_minutes))
+        rule->longest_minutes >= 1e6 || worked_ns(watch) <= time_from_minutes(rule->longest_minutes))
         return;
     deterrent->too_long = true;
     why_reset(&why, rule->clause, "the deterrent has worked for more than %g min", rule->longest_minutes);
@@ -124,7 +120,7 @@ static bool show(const struct watch *watch, struct watch_timer *timer)
     if (!rule->stated || source_sounds(watch->phase))
         return false;
     *timer = (struct watch_timer){.elapsed_ns = worked_ns(watch),
-                                  .needed_ns = minutes_ns(rule->least_minutes),
+                                  .needed_ns = time_from_minutes(rule->least_minutes),
                                   .running = watch->deterrent.on_ns >= 0 && watch->deterrent.off_ns < 0};
     snprintf(timer->name, sizeof timer->name, "deterrent");
     snprintf(timer->held_by, sizeof timer->held_by, "%s", timer->running ? "" : "it is off");

@@ -20,6 +20,7 @@ static const char *const kind_words[NOTE_KIND_COUNT] = {
     [NOTE_QUIETING] = "quieting",
     [NOTE_OTHER] = "other source",
     [NOTE_DETERRENT] = "deterrent",
+    [NOTE_OVERRIDE] = "safety override",
     [NOTE_WHOSE] = "whose",
     [NOTE_POSITION] = "position",
     [NOTE_MARK] = "mark",
@@ -29,8 +30,10 @@ static const char *const kind_words[NOTE_KIND_COUNT] = {
 
 static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
 static const char *const verdict_words[] = {"confirm", "dismiss", "left", NULL};
-static const char *const answer_words[] = {"seen", "passed", "stopped", "declined", "open", "close",
-                                           "on",   "off",    "ours",    "other",    NULL};
+static const char *const job_words[] = {"pile", "line", "test", "charge", NULL};
+static const char *const reason_words[] = {"life", "refusal", "instability", NULL};
+static const char *const answer_words[] = {"seen",  "passed", "stopped", "declined", "open",  "begin", "end",
+                                           "close", "on",     "off",     "ours",     "other", NULL};
 static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
@@ -50,34 +53,47 @@ static const char *const source_words[] = {"off",   "soft start", "full power", 
 /* By name, as an entry lists them. */
 static const struct note_field fields[] = {
     {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
-    {WORD(answer, answer_words), .allowed = "seen, passed, stopped, declined (acknowledgement); open, close "
-                                            "(job); on, off (quieting, deterrent, other source); "
-                                            "ours, other (whose)"},
+    {WORD(answer, answer_words),
+     .allowed = "seen, passed, stopped, declined (acknowledgement); open, begin, end, close "
+                "(job); on, off (quieting, deterrent, other source); "
+                "ours, other (whose)"},
     {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
+    {NUMBER(blows, 0, 100000, 0), .allowed = "0 to 100000 blows"},
     {OTHER(calf, NOTE_FORM_FLAG), .allowed = "true, false"},
+    {NUMBER(charge_kg, 0, 10000, 3), .allowed = "0 to 10000 kg"},
     {OTHER(contact, NOTE_FORM_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
     {NUMBER(depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
     {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {NUMBER(donor_kg, 0, 1000, 3), .allowed = "0 to 1000 kg"},
     {NUMBER(elements, 0, 1000, 0), .allowed = "0 to 1000 elements"},
     {NUMBER(energy_kj, 0, 100000, 1), .allowed = "0 to 100000 kJ"},
+    {NUMBER(first_point, 0, 10000000, 1), .allowed = "0 to 10000000"},
     {OTHER(group, NOTE_FORM_GROUP),
      .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
                 "sirenian, sea otter, turtle"},
+    {TEXT(hammer), .allowed = NAME_ALLOWED},
     {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
     {.name = "job",
      .form = NOTE_FORM_TEXT,
      .offset = offsetof(struct note, job),
      .size = IMPULSE_JOB_SIZE,
      .allowed = "at most 31 bytes, no control characters"},
+    {WORD(job_kind, job_words), .allowed = "pile, line, test, charge"},
+    {NUMBER(last_point, 0, 10000000, 1), .allowed = "0 to 10000000"},
     {NUMBER(latitude_deg, -90, 90, ROUND_DECIMALS_POSITION), .allowed = "-90 to 90 degrees, north positive"},
     {OTHER(leaving, NOTE_FORM_FLAG), .allowed = "true, false"},
+    {TEXT(leg), .allowed = NAME_ALLOWED},
     {NUMBER(longitude_deg, -180, 180, ROUND_DECIMALS_POSITION),
      .allowed = "-180 to 180 degrees, east positive"},
     {NUMBER(minutes, 0, 10080, 2), .allowed = "0 to 10080 minutes"},
     {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
     {OTHER(occurred_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {TEXT(person), .allowed = NAME_ALLOWED},
+    {WORD(reason, reason_words), .allowed = "life, refusal, instability"},
+    {OTHER(refusal, NOTE_FORM_FLAG), .allowed = "true, false"},
+    {OTHER(restrike, NOTE_FORM_FLAG), .allowed = "true, false"},
     {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
+    {TEXT(sequence), .allowed = NAME_ALLOWED},
     {WORD(source_state, source_words),
      .allowed = "off, soft start, full power, hold, reduced, stopped, vibro, drilling, line turn, test"},
     {TEXT(species), .allowed = NAME_ALLOWED},
@@ -211,12 +227,13 @@ enum status note_set(struct note *note, const char *field, const char *value, co
 /* Each kind has its own answers. */
 static const char *missing_of_answer(const struct note *note)
 {
-    bool of_job = strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0;
+    bool of_job = strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0 ||
+                  strcmp(note->answer, "begin") == 0 || strcmp(note->answer, "end") == 0;
     bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
     bool of_whose = strcmp(note->answer, "ours") == 0 || strcmp(note->answer, "other") == 0;
     bool good = *note->answer && of_job == (note->kind == NOTE_JOB) &&
                 of_quieting == (note->kind == NOTE_QUIETING || note->kind == NOTE_OTHER ||
-                                note->kind == NOTE_DETERRENT) &&
+                                note->kind == NOTE_DETERRENT || note->kind == NOTE_OVERRIDE) &&
                 of_whose == (note->kind == NOTE_WHOSE);
     return good ? NULL : "answer";
 }
@@ -253,6 +270,10 @@ static const char *missing_of(const struct note *note)
                                  : missing_of_answer(note);
     case NOTE_SOURCE:
         return !*note->source_state ? "source_state" : NULL;
+    case NOTE_OVERRIDE:
+        return !person                                             ? "person"
+               : strcmp(note->answer, "on") == 0 && !*note->reason ? "reason"
+                                                                   : missing_of_answer(note);
     case NOTE_JOB:
         return !*note->job ? "job" : missing_of_answer(note);
     case NOTE_QUIETING:

@@ -20,12 +20,15 @@ enum note_kind {
     NOTE_RELEASE,         /* person: the named observer allows the start */
     NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer (seen | passed | stopped | declined) [text]
                            */
-    NOTE_SOURCE,    /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
-    NOTE_JOB,       /* job, answer (open | close) */
-    NOTE_WEATHER,   /* sea_state, visibility_m, depth_m: any of them */
+    NOTE_SOURCE,  /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
+    NOTE_JOB,     /* job, answer (open | begin | end | close): begin and end of a line between open and close;
+                     with open what it is: job_kind and the fields from leg on */
+    NOTE_WEATHER, /* sea_state, visibility_m, depth_m: any of them */
     NOTE_QUIETING,  /* answer (on | off): a quieting measure is at work or not; text: which, e.g. bubble
                        curtain */
     NOTE_DETERRENT, /* answer (on | off): the deterrent works or not */
+    NOTE_OVERRIDE,  /* person, answer (on | off), reason (life | refusal | instability), text: the crew works
+                       on for safety against a stop */
     NOTE_WHOSE,     /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
                        occurred_ns on; all of it in the job where that is not given */
     NOTE_POSITION,  /* latitude_deg, longitude_deg of the source */
@@ -49,7 +52,14 @@ struct note {
     char job[NOTE_NAME_SIZE];
     char impulse[NOTE_NAME_SIZE];
     char source_state[NOTE_NAME_SIZE];
+    char reason[NOTE_NAME_SIZE];
     char text[NOTE_TEXT_SIZE];
+    /* Of a job: a pile's leg, hammer and blows by the driver's count; a line's sequence and shot points; a
+     * charge's and its donor's weight. energy_kj is the planned one. */
+    char job_kind[NOTE_NAME_SIZE]; /* "pile", "line", "test", "charge" */
+    char leg[NOTE_NAME_SIZE], hammer[NOTE_NAME_SIZE], sequence[NOTE_NAME_SIZE];
+    double blows, first_point, last_point, charge_kg, donor_kg;
+    bool refusal, restrike;
     enum group group;  /* GROUP_UNKNOWN where not given */
     uint32_t contact;  /* 0 where not given */
     double number;     /* animals; NAN where not given, as all numbers below */

@@ -152,11 +152,12 @@ struct permit_test {
     char clause[PERMIT_TEXT_SIZE];
 };
 
-/* Impact piling after vibro piling or relief drilling in the same job. */
+/* Vibro piling and relief drilling, and the impact piling that follows directly. */
 struct permit_steady {
     bool stated;
-    bool pre_watch;        /* vibro and drilling need the pre-watch themselves */
-    double direct_minutes; /* impact within so long after them needs no new pre-watch; 0: always */
+    bool pre_watch;  /* they need the pre-watch themselves */
+    bool stands;     /* they stand for the pre-watch of what follows */
+    bool soft_start; /* what follows needs a soft start */
     char clause[PERMIT_TEXT_SIZE];
 };
 

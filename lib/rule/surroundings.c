@@ -11,7 +11,8 @@ void surroundings_reset(struct surroundings *surroundings, const struct permit *
                                           .sea_state = NAN,
                                           .latitude_deg = NAN,
                                           .longitude_deg = NAN,
-                                          .day = permit->start};
+                                          .day = permit->start,
+                                          .light_from_ns = INT64_MAX};
 }
 
 static void take(double *value, double said)
@@ -25,10 +26,8 @@ void surroundings_take(struct surroundings *surroundings, const struct note *not
     take(&surroundings->depth_m, note->depth_m);
     take(&surroundings->visibility_m, note->visibility_m);
     take(&surroundings->sea_state, note->sea_state);
-    if (note->kind == NOTE_POSITION) {
-        take(&surroundings->latitude_deg, note->latitude_deg);
-        take(&surroundings->longitude_deg, note->longitude_deg);
-    }
+    if (note->kind == NOTE_POSITION)
+        surroundings_set_place(surroundings, note->latitude_deg, note->longitude_deg);
 }
 
 static bool knows_sun(const struct surroundings *surroundings)
@@ -43,10 +42,8 @@ static bool up(const struct surroundings *surroundings, int64_t now_ns, double a
     return sun_elevation_deg(at_ns, surroundings->latitude_deg, surroundings->longitude_deg) >= SUN_RISE_DEG;
 }
 
-enum light surroundings_light(const struct surroundings *surroundings, int64_t now_ns)
+static enum light light_at(const struct surroundings *surroundings, int64_t now_ns)
 {
-    if (!knows_sun(surroundings))
-        return LIGHT_UNKNOWN;
     double after = surroundings->day.after_sunrise_minutes, before = surroundings->day.before_sunset_minutes;
     bool day;
     if (up(surroundings, now_ns, 0))
@@ -58,19 +55,55 @@ enum light surroundings_light(const struct surroundings *surroundings, int64_t n
     return day ? LIGHT_DAY : LIGHT_DARK;
 }
 
-bool surroundings_dark(const struct surroundings *surroundings, int64_t now_ns)
-{
-    return surroundings_light(surroundings, now_ns) == LIGHT_DARK;
-}
-
-int64_t surroundings_light_change_ns(const struct surroundings *surroundings, int64_t now_ns)
+/* To the whole minute, so that it does not matter how often the sun is looked at; at most a day ahead. */
+void surroundings_update(struct surroundings *surroundings, int64_t now_ns)
 {
     const int64_t minute = 60 * TIME_NS_PER_S;
+    if (now_ns >= surroundings->light_from_ns && now_ns < surroundings->light_until_ns)
+        return;
+    surroundings->light_from_ns = now_ns;
+    surroundings->light_until_ns = INT64_MAX;
+    surroundings->light = LIGHT_UNKNOWN;
     if (!knows_sun(surroundings))
-        return INT64_MAX;
-    enum light now = surroundings_light(surroundings, now_ns);
-    for (int64_t at = now_ns / minute * minute + minute; at <= now_ns + 1440 * minute; at += minute)
-        if (surroundings_light(surroundings, at) != now)
-            return at;
-    return INT64_MAX;
+        return;
+    int64_t at = now_ns / minute * minute, end = at + 1440 * minute;
+    surroundings->light = light_at(surroundings, at);
+    for (at += minute; at < end && light_at(surroundings, at) == surroundings->light; at += minute)
+        ;
+    surroundings->light_until_ns = at;
+}
+
+static void look_anew(struct surroundings *surroundings)
+{
+    surroundings->light_from_ns = INT64_MAX;
+    surroundings->light_until_ns = 0;
+}
+
+void surroundings_set_clock(struct surroundings *surroundings, int64_t zero_unix_ns)
+{
+    surroundings->has_clock = true;
+    surroundings->zero_unix_ns = zero_unix_ns;
+    look_anew(surroundings);
+}
+
+void surroundings_set_place(struct surroundings *surroundings, double latitude_deg, double longitude_deg)
+{
+    take(&surroundings->latitude_deg, latitude_deg);
+    take(&surroundings->longitude_deg, longitude_deg);
+    look_anew(surroundings);
+}
+
+enum light surroundings_light(const struct surroundings *surroundings)
+{
+    return surroundings->light;
+}
+
+bool surroundings_dark(const struct surroundings *surroundings)
+{
+    return surroundings->light == LIGHT_DARK;
+}
+
+int64_t surroundings_light_change_ns(const struct surroundings *surroundings)
+{
+    return surroundings->light_until_ns;
 }

@@ -18,6 +18,9 @@ struct surroundings {
     bool has_clock;
     int64_t zero_unix_ns;    /* UTC of watch time zero */
     struct permit_start day; /* how the permit bounds the day */
+    /* What surroundings_update found last: it holds from one time to just before the other. */
+    enum light light;
+    int64_t light_from_ns, light_until_ns;
 };
 
 /* All unknown. */
@@ -25,12 +28,19 @@ void surroundings_reset(struct surroundings *surroundings, const struct permit *
 /* What a note says of them; what it does not say stays as it was. */
 void surroundings_take(struct surroundings *surroundings, const struct note *note);
 
+/* Looks at the sun again where that is due; the others below say what it found. */
+void surroundings_update(struct surroundings *surroundings, int64_t now_ns);
+/* UTC of watch time zero. */
+void surroundings_set_clock(struct surroundings *surroundings, int64_t zero_unix_ns);
+void surroundings_set_place(struct surroundings *surroundings, double latitude_deg, double longitude_deg);
+
 /* Day from after_sunrise_minutes after sunrise to before_sunset_minutes before sunset, else dark; unknown
  * where time or place are. */
-enum light surroundings_light(const struct surroundings *surroundings, int64_t now_ns);
-/* When the light next changes, watch time; INT64_MAX where it does not within a day, or nobody knows. */
-int64_t surroundings_light_change_ns(const struct surroundings *surroundings, int64_t now_ns);
+enum light surroundings_light(const struct surroundings *surroundings);
+/* When the light next changes, watch time, to the minute; INT64_MAX where it does not within a day, or nobody
+ * knows. */
+int64_t surroundings_light_change_ns(const struct surroundings *surroundings);
 /* Dark as far as is known. */
-bool surroundings_dark(const struct surroundings *surroundings, int64_t now_ns);
+bool surroundings_dark(const struct surroundings *surroundings);
 
 #endif

@@ -32,14 +32,16 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->run = 1;
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
+    watch->start.good_since_ns = watch->outage.since_ns = watch->outage.heard_ns = -1;
+    watch->turn.last_ns = watch->turn.soft_ns = -1;
+    watch->turn.expected_minutes = NAN;
     watch->deterrent.on_ns = watch->deterrent.off_ns = -1;
     source_reset(&watch->source);
     ranges_reset(&watch->ranges, &setup->ranges);
     surroundings_reset(&watch->surroundings, setup->permit);
     watch->surroundings.depth_m = setup->depth_m > 0 ? setup->depth_m : NAN;
     if (setup->ranges.has_source) {
-        watch->surroundings.latitude_deg = setup->ranges.latitude_deg;
-        watch->surroundings.longitude_deg = setup->ranges.longitude_deg;
+        surroundings_set_place(&watch->surroundings, setup->ranges.latitude_deg, setup->ranges.longitude_deg);
     }
     *out = watch;
     return STATUS_OK;
@@ -47,8 +49,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
 
 void watch_set_clock(struct watch *watch, int64_t zero_unix_ns)
 {
-    watch->surroundings.has_clock = true;
-    watch->surroundings.zero_unix_ns = zero_unix_ns;
+    surroundings_set_clock(&watch->surroundings, zero_unix_ns);
 }
 
 void watch_destroy(struct watch *watch)
@@ -61,6 +62,7 @@ void watch_destroy(struct watch *watch)
 /* Everything that follows from the present state at the present time. */
 static void settle(struct watch *watch)
 {
+    surroundings_update(&watch->surroundings, watch->now_ns);
     contact_expire(watch);
     source_settle(watch);
     conditions_settle(watch);

@@ -126,7 +126,8 @@ static void want_while_sounding(const struct watch *watch, const struct contact 
 {
     const char *clause = watch->permit->soft_start.clause;
     struct why asked;
-    enum permit_action unallowed = watch->source.unallowed, condition = conditions_ask(watch, &asked);
+    enum permit_action unallowed = override_limit(watch, watch->source.unallowed);
+    enum permit_action condition = override_limit(watch, conditions_ask(watch, &asked));
     if (unallowed > ACTION_LOG && (!lead || contact_wanted(watch, lead) < unallowed)) {
         ground(wanted, watch, word_of(unallowed), GROUND_UNALLOWED, watch->permit->pre_watch_clause,
                watch->source.unallowed_why);

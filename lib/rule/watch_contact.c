@@ -352,7 +352,7 @@ enum permit_action contact_wanted(const struct watch *watch, const struct contac
     if (!source_sounds(watch->phase) && watch->phase != PHASE_BREAK && action < ACTION_DELAY &&
         contact_holds_start(contact, watch->permit, watch->now_ns))
         action = ACTION_DELAY;
-    return action;
+    return source_sounds(watch->phase) ? override_limit(watch, action) : action;
 }
 
 void contact_present(struct watch *watch)

@@ -20,17 +20,24 @@ bool effort_on_watch(const struct watch *watch, const char *person)
     return false;
 }
 
-static bool anybody_as(const struct watch *watch, const char *as)
+static uint32_t count_as(const struct watch *watch, const char *as)
 {
+    uint32_t n = 0;
     for (uint32_t i = 0; i < watch->effort.n_people; i++)
-        if (strcmp(watch->effort.people[i].watch, as) == 0)
-            return true;
-    return false;
+        n += strcmp(watch->effort.people[i].watch, as) == 0;
+    return n;
+}
+
+bool effort_kept_as(const struct watch *watch, const char *as)
+{
+    const struct permit_staff *staff = &watch->permit->staff;
+    uint32_t least = strcmp(as, "visual") == 0 ? staff->least_visual : staff->least_acoustic;
+    return count_as(watch, as) >= (least > 1 ? least : 1);
 }
 
 bool effort_anybody(const struct watch *watch)
 {
-    return anybody_as(watch, "visual") || anybody_as(watch, "acoustic");
+    return count_as(watch, "visual") > 0 || count_as(watch, "acoustic") > 0;
 }
 
 const struct permit_pre_watch *effort_pre_watch(const struct watch *watch)
@@ -40,8 +47,8 @@ const struct permit_pre_watch *effort_pre_watch(const struct watch *watch)
 
 bool effort_kept(const struct watch *watch, const char **out_missing)
 {
-    bool visual = !effort_pre_watch(watch)->visual || anybody_as(watch, "visual");
-    bool acoustic = !effort_pre_watch(watch)->acoustic || anybody_as(watch, "acoustic");
+    bool visual = !effort_pre_watch(watch)->visual || effort_kept_as(watch, "visual");
+    bool acoustic = !effort_pre_watch(watch)->acoustic || effort_kept_as(watch, "acoustic");
     const char *missing = visual && acoustic ? ""
                           : visual           ? "no acoustic observer is on watch"
                           : acoustic         ? "no visual observer is on watch"

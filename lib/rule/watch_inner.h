@@ -103,6 +103,56 @@ struct quieting_state {
     char id[FLOW_ID_SIZE];
 };
 
+#define START_MAX_ORDERS 16
+
+/* condition_start.c */
+struct start_state {
+    struct spans good;     /* stretches of watch by day in good conditions */
+    int64_t good_since_ns; /* -1: not now */
+    uint32_t n_orders;     /* the newest, oldest first */
+    int64_t order_ns[START_MAX_ORDERS];
+    char id[FLOW_ID_SIZE]; /* of the newest word on the weather */
+};
+
+/* condition_outage.c */
+struct outage_state {
+    int64_t since_ns; /* -1: somebody listens */
+    struct spans past;
+    int64_t heard_ns; /* when an animal was last only heard; -1 */
+};
+
+/* condition_turn.c */
+struct turn_state {
+    double expected_minutes;
+    int64_t last_ns; /* of the newest impulse in a turn or of a small source; -1 */
+    int64_t soft_ns; /* when the soft start began that leads to a line; -1 */
+    bool said_apart;
+    char id[FLOW_ID_SIZE];
+};
+
+/* condition_override.c */
+struct override_state {
+    bool on, allowed;
+    char id[FLOW_ID_SIZE];
+};
+
+#define STAFF_MAX 32
+
+/* condition_staff.c */
+struct shift {
+    char name[NOTE_NAME_SIZE];
+    int64_t on_ns, off_ns; /* -1 */
+    int64_t stretch_ns;    /* on watch before without a rest that was long enough */
+    bool full;             /* the stretch was as long as it may be */
+    bool said_long, said_day;
+    struct spans past;
+    char id[FLOW_ID_SIZE];
+};
+struct staff_state {
+    uint32_t n;
+    struct shift all[STAFF_MAX];
+};
+
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
 
 /* Why an advice is given; with word, contact and confirmed it says whether it is the same advice. */
@@ -159,6 +209,11 @@ struct watch {
     struct surroundings surroundings;
     struct deterrent deterrent;
     struct quieting_state quieting;
+    struct start_state start;
+    struct outage_state outage;
+    struct turn_state turn;
+    struct override_state override;
+    struct staff_state staff;
 
     struct advice_key keys[STATION_COUNT];
     uint32_t n_advice; /* newest first */
@@ -184,6 +239,8 @@ bool effort_on_watch(const struct watch *watch, const char *person); /* as visua
 bool effort_anybody(const struct watch *watch);                      /* any observer at all */
 /* Whether all whom the permit needs are on watch; if not, who is missing, in words. */
 bool effort_kept(const struct watch *watch, const char **out_missing);
+/* Whether that watch alone ("visual", "acoustic") is kept, by as many as the permit wants. */
+bool effort_kept_as(const struct watch *watch, const char *as);
 void effort_sign_on(struct watch *watch, const struct note *note);
 void effort_sign_off(struct watch *watch, const struct note *note);
 void effort_unheard(struct watch *watch, const struct event *event);
@@ -234,6 +291,10 @@ void conditions_enter_phase(struct watch *watch, enum phase from, enum phase to)
 void conditions_settle(struct watch *watch);
 /* The source begins to sound: a finding for each that holds it back. */
 void conditions_judge_start(struct watch *watch);
+/* Whether the source may enter that phase only after a pre-watch (condition_test.c). */
+bool conditions_need_pre_watch(const struct watch *watch, enum phase to);
+/* What is left of an action while an override is in force (condition_override.c). */
+enum permit_action override_limit(const struct watch *watch, enum permit_action action);
 void conditions_show(const struct watch *watch, struct watch_view *view);
 
 /* watch_whose.c */

@@ -121,6 +121,7 @@ void note_take(struct watch *watch, const struct note *note)
         break;
     case NOTE_WEATHER:
     case NOTE_DETERRENT:
+    case NOTE_OVERRIDE:
     case NOTE_QUIETING: /* the conditions' and the tally's */
     case NOTE_OTHER:
     case NOTE_MARK:

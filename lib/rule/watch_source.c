@@ -80,10 +80,10 @@ void source_job(struct watch *watch, const struct note *note)
         snprintf(source->job, sizeof source->job, "%.31s", note->job);
         source->n_impulses = 0;
         watch->job_heard = watch->n_heard;
-    } else if (strcmp(source->job, note->job) == 0) {
+    } else if (strcmp(source->job, note->job) == 0 && strcmp(note->answer, "close") == 0) {
         source->job[0] = '\0';
         ranges_end_job(&watch->ranges);
-    } else
+    } else if (strcmp(source->job, note->job) != 0)
         note_without_effect(watch, "job %.31s is not open", note->job);
 }
 
@@ -236,7 +236,7 @@ void source_take_impulse(struct watch *watch, const struct event *event)
 
 const struct permit_break *source_break(const struct watch *watch)
 {
-    return permit_last_break(watch->permit, surroundings_dark(&watch->surroundings, watch->now_ns));
+    return permit_last_break(watch->permit, surroundings_dark(&watch->surroundings));
 }
 
 int64_t source_break_over_ns(const struct watch *watch)
@@ -383,7 +383,7 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
         source->unallowed = ACTION_LOG;
         source->unallowed_contact = 0;
     }
-    if (begins && to != PHASE_DRILLING && to != PHASE_LINE_TURN) {
+    if (begins && conditions_need_pre_watch(watch, to)) {
         judge_start(watch, from);
         if (from != PHASE_BREAK)
             conditions_judge_start(watch);
