@@ -8,6 +8,18 @@
 #include <math.h>
 #include <stdlib.h>
 
+/* The settings say where the array's edge is. */
+static void place_zones(const struct site *site, struct rules *rules, struct problems *problems)
+{
+    double aperture_m = site->source.shape.aperture_m;
+    for (uint32_t i = 0; i < rules->permit.n_zones; i++)
+        if (rules->permit.zones[i].origin == ORIGIN_ARRAY_EDGE && !(aperture_m > 0))
+            problems_add(problems, site->permit, 0, "",
+                         "zone '%s' begins at the array's edge: the settings must say source.aperture_m",
+                         rules->permit.zones[i].name);
+    permit_set_edge(&rules->permit, aperture_m / 2);
+}
+
 enum status rules_load(struct site *site, struct problems *problems, struct rules **out)
 {
     unsigned before = problems->count;
@@ -20,6 +32,8 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
         source_settings_criteria(&site->source, problems, &site->effective, &rules->criteria);
     if (permit == STATUS_OK && files_read(site->permit, &rules->permit_text) != STATUS_OK)
         problems_add(problems, site->permit, 0, "", "cannot be read as text");
+    if (permit == STATUS_OK)
+        place_zones(site, rules, problems);
     enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
     if (problems->count != before)
         status = STATUS_BAD_FORMAT;

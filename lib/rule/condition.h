@@ -24,6 +24,7 @@ struct condition {
 
 extern const struct condition condition_deterrent;
 extern const struct condition condition_quieting;
+extern const struct condition condition_soft_start;
 extern const struct condition condition_start;
 extern const struct condition condition_outage;
 extern const struct condition condition_turn;

@@ -130,9 +130,39 @@ void contact_add_cause(struct contact *contact, const char *id)
     snprintf(contact->causes[contact->n_causes++], FLOW_ID_SIZE, "%s", id);
 }
 
+static int lower(char c)
+{
+    return c >= 'A' && c <= 'Z' ? c - 'A' + 'a' : c;
+}
+
+/* Capitals aside. */
+static bool same_species(const char *a, const char *b)
+{
+    while (*a && lower(*a) == lower(*b)) {
+        a++;
+        b++;
+    }
+    return *a == *b;
+}
+
+static bool is_listed(const struct permit_zone *zone, const struct contact *contact)
+{
+    if (zone->n_species == 0)
+        return true;
+    if (!*contact->species)
+        return zone->species_unknown == SPECIES_LISTED;
+    for (uint32_t i = 0; i < zone->n_species && i < PERMIT_MAX_SPECIES; i++)
+        if (same_species(zone->species[i], contact->species))
+            return true;
+    return false;
+}
+
 static bool zone_covers(const struct permit_zone *zone, const struct contact *contact)
 {
-    return (zone->groups & PERMIT_GROUP_BIT(contact->group)) != 0 && (!zone->calf_only || contact->calf);
+    uint32_t found = (contact->seen ? PERMIT_SEEN : 0) | (contact->n_calls > 0 ? PERMIT_HEARD : 0);
+    return (zone->groups & PERMIT_GROUP_BIT(contact->group)) != 0 && (zone->found & found) != 0 &&
+           (!zone->calf_only || contact->calf) &&
+           (zone->least_number <= 1 || contact->animals >= zone->least_number) && is_listed(zone, contact);
 }
 
 void contact_detect(struct contact *contact, const struct permit *permit, int64_t when_ns)
@@ -143,7 +173,7 @@ void contact_detect(struct contact *contact, const struct permit *permit, int64_
     for (uint32_t i = 0; i < permit->n_zones; i++) {
         if (!zone_covers(&permit->zones[i], contact))
             continue;
-        double p = whereabouts_p_inside(&contact->where, permit->zones[i].radius_m);
+        double p = whereabouts_p_inside(&contact->where, permit_zone_reach_m(&permit->zones[i]));
         if (!isnan(p)) {
             if (p >= permit->p_inside_prepare && when_ns > contact->stated_ns[i]) {
                 contact->stated_before_ns[i] = contact->stated_ns[i];
@@ -164,7 +194,8 @@ void contact_place(struct contact *contact, const struct permit *permit, double 
     contact->where = (struct whereabouts){true, distance_m, log_spread};
     contact->where_ns = when_ns;
     for (uint32_t i = 0; i < permit->n_zones; i++) {
-        if (whereabouts_p_inside(&contact->where, permit->zones[i].radius_m) >= permit->p_inside_prepare)
+        if (whereabouts_p_inside(&contact->where, permit_zone_reach_m(&permit->zones[i])) >=
+            permit->p_inside_prepare)
             continue;
         contact->assumed_ns[i] = -1;
         if (contact->stated_ns[i] == when_ns)
@@ -293,7 +324,7 @@ struct contact_outcome contact_outcome(const struct contact *contact, const stru
                                        int64_t now_ns)
 {
     const struct permit_zone *zone = contact_zone(contact, permit, now_ns);
-    double p = zone ? whereabouts_p_inside(&contact->where, zone->radius_m) : NAN;
+    double p = zone ? whereabouts_p_inside(&contact->where, permit_zone_reach_m(zone)) : NAN;
     return (struct contact_outcome){.contact = contact->number,
                                     .group = contact->group,
                                     .grade = contact->grade,
@@ -312,8 +343,8 @@ struct contact_outcome contact_outcome(const struct contact *contact, const stru
 static void describe_inside(const struct contact *contact, const struct permit_zone *zone,
                             char out[FLOW_TEXT_SIZE])
 {
-    double p =
-        round_decimals(whereabouts_p_inside(&contact->where, zone->radius_m), ROUND_DECIMALS_PROBABILITY);
+    double p = round_decimals(whereabouts_p_inside(&contact->where, permit_zone_reach_m(zone)),
+                              ROUND_DECIMALS_PROBABILITY);
     char percent[16] = "under 1";
     if (p > 0.99)
         snprintf(percent, sizeof percent, "over 99");
@@ -342,7 +373,7 @@ void contact_describe(const struct contact *contact, const struct permit *permit
     else if (contact_is_question(contact, permit, now_ns))
         snprintf(inside, sizeof inside, ": the observer is asked whether it is inside the zone '%s'",
                  zone->name);
-    else if (whereabouts_p_inside(&contact->where, zone->radius_m) < permit->p_inside_prepare)
+    else if (whereabouts_p_inside(&contact->where, permit_zone_reach_m(zone)) < permit->p_inside_prepare)
         snprintf(inside, sizeof inside, ": was inside the zone '%s', which is not clear yet", zone->name);
     else if (!contact->sure && contact->where.known && !contact->confirmed)
         snprintf(inside, sizeof inside, ": may be inside the zone '%s'", zone->name);

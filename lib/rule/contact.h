@@ -26,9 +26,11 @@ struct contact {
     enum contact_grade grade;
     enum contact_state state;
     uint32_t n_calls;
-    bool seen;                 /* a person has sighted it */
-    bool calf;                 /* with a calf */
-    int64_t first_ns, last_ns; /* of its calls and sightings */
+    bool seen;                    /* a person has sighted it */
+    bool calf;                    /* with a calf */
+    double animals;               /* the most that a person counted; 0: nobody has */
+    char species[NOTE_NAME_SIZE]; /* as a person said last; empty: nobody has */
+    int64_t first_ns, last_ns;    /* of its calls and sightings */
 
     double evidence; /* log-odds at evidence_ns; they fade from there */
     int64_t evidence_ns;

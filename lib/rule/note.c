@@ -284,7 +284,8 @@ static const char *missing_of(const struct note *note)
     case NOTE_WHOSE:
         return !person ? "person" : !*note->impulse ? "impulse" : missing_of_answer(note);
     case NOTE_WEATHER:
-        return isnan(note->sea_state) && isnan(note->visibility_m) ? "sea_state" : NULL;
+        return isnan(note->sea_state) && isnan(note->visibility_m) && isnan(note->depth_m) ? "sea_state"
+                                                                                           : NULL;
     case NOTE_POSITION:
         return isnan(note->latitude_deg)    ? "latitude_deg"
                : isnan(note->longitude_deg) ? "longitude_deg"

@@ -62,6 +62,17 @@ const char *permit_break_watch_text(enum break_watch worth)
     return WORD_OF(worth_words, worth);
 }
 
+void permit_set_edge(struct permit *permit, double half_length_m)
+{
+    for (uint32_t i = 0; i < permit->n_zones && i < PERMIT_MAX_ZONES; i++)
+        permit->zones[i].edge_m = permit->zones[i].origin == ORIGIN_ARRAY_EDGE ? half_length_m : 0;
+}
+
+double permit_zone_reach_m(const struct permit_zone *zone)
+{
+    return zone->radius_m + zone->edge_m;
+}
+
 const struct permit_pre_watch *permit_pre_watch_at(const struct permit *permit, double depth_m)
 {
     const struct permit_pre_watch *found = &permit->pre_watches[0];

@@ -61,8 +61,9 @@ struct permit_pre_watch {
 
 struct permit_zone {
     char name[PERMIT_NAME_SIZE];
-    double radius_m; /* INFINITY: any distance */
+    double radius_m; /* from its origin; INFINITY: any distance */
     enum zone_origin origin;
+    double edge_m; /* of the source from its middle, where the origin is the edge: permit_set_edge; else 0 */
     uint32_t groups; /* bit (1u << enum group); the unknown group has its own bit */
     uint32_t found;  /* PERMIT_SEEN, PERMIT_HEARD: how an animal must be found to count */
     bool calf_only;
@@ -273,6 +274,10 @@ struct permit {
  * problem; STATUS_OK when there are no more. */
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE]);
 
+/* Distances are stated from the source's middle: says how far its edge is from there. */
+void permit_set_edge(struct permit *permit, double half_length_m);
+/* How far from the source's middle the zone reaches. */
+double permit_zone_reach_m(const struct permit_zone *zone);
 /* The pre-watch at that depth; NAN: unknown, the longest. */
 const struct permit_pre_watch *permit_pre_watch_at(const struct permit *permit, double depth_m);
 /* Silence of up to this length is a break, after which no pre-watch is needed, by day or in the dark. */

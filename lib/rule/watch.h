@@ -39,8 +39,7 @@ struct watch_setup {
     /* Where source and channels are, and what moves; all zeros: the watch says nothing of ranges, and those
      * above hold. */
     struct ranges_setup ranges;
-    double depth_m;              /* of the water at the source until a note says another; 0: unknown */
-    double source_half_length_m; /* from the source's middle to its edge; 0: a point */
+    double depth_m; /* of the water at the source until a note says another; 0: unknown */
 };
 
 struct watch;

@@ -178,10 +178,13 @@ static void want_in_break(const struct watch *watch, const struct contact *lead,
         need_start(watch, wanted);
         return;
     }
-    snprintf(text, sizeof text, "the zone is clear: the source may resume while the silence is %s %g min",
-             source_break(watch)->limit_included ? "at most" : "less than", source_break(watch)->minutes);
-    ground(wanted, watch, ADVICE_RESUME, GROUND_BREAK, watch->permit->break_clause, text);
-    wanted->until_ns = watch->source.quiet_ns + time_from_s(source_break(watch)->minutes * 60);
+    const struct permit_break *row = source_break_row(watch);
+    snprintf(text, sizeof text, "the zone is clear: the source may resume%s while the silence is %s %g min",
+             row->soft_start ? " by a soft start" : "", row->limit_included ? "at most" : "less than",
+             row->minutes);
+    ground(wanted, watch, row->soft_start ? ADVICE_NEW_SOFT_START : ADVICE_RESUME, GROUND_BREAK,
+           watch->permit->break_clause, text);
+    wanted->until_ns = watch->source.quiet_ns + time_from_minutes(row->minutes);
 }
 
 static void want_ready(const struct watch *watch, struct wanted *wanted)

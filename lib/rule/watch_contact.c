@@ -223,6 +223,10 @@ void contact_take_sighting(struct watch *watch, const struct note *note)
     contact->seen = true;
     vouch(watch, contact, note);
     contact->calf = contact->calf || note->calf;
+    if (note->number > contact->animals)
+        contact->animals = note->number;
+    if (*note->species)
+        memcpy(contact->species, note->species, sizeof contact->species);
     contact->grade = GRADE_ACT; /* a person saw it */
     contact->last_ns = watch->now_ns;
     contact_add_cause(contact, watch->recent.causes[0]);

@@ -153,6 +153,17 @@ struct staff_state {
     struct shift all[STAFF_MAX];
 };
 
+#define RISE_LEVELS 10
+
+/* condition_soft_start.c: how the present soft start rises */
+struct rise {
+    bool on, said_step;
+    double planned_kj, number; /* number: of the present stage, NAN before the first */
+    uint32_t n_stages, n_bursts, n_first, n_levels;
+    int64_t last_ns;                                     /* the newest impulse; -1 */
+    double first_db[RISE_LEVELS], level_db[RISE_LEVELS]; /* the first; the newest, a ring */
+};
+
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
 
 /* Why an advice is given; with word, contact and confirmed it says whether it is the same advice. */
@@ -214,6 +225,7 @@ struct watch {
     struct turn_state turn;
     struct override_state override;
     struct staff_state staff;
+    struct rise rise;
 
     struct advice_key keys[STATION_COUNT];
     uint32_t n_advice; /* newest first */
@@ -272,6 +284,8 @@ void source_settle(struct watch *watch); /* silence, and a soft start that is to
 int64_t source_due_ns(const struct watch *watch);
 /* The longest silence after which no pre-watch is needed, by day or in the dark. */
 const struct permit_break *source_break(const struct watch *watch);
+/* The row of the breaks that the present silence is in; the longest beyond it. */
+const struct permit_break *source_break_row(const struct watch *watch);
 /* The first moment at which silence has been too long for a break. */
 int64_t source_break_over_ns(const struct watch *watch);
 /* A stop for a contact ends by time while the source still sounds: it stays, until the source stops. */

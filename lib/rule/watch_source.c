@@ -239,10 +239,34 @@ const struct permit_break *source_break(const struct watch *watch)
     return permit_last_break(watch->permit, surroundings_dark(&watch->surroundings));
 }
 
+static int64_t row_over_ns(const struct watch *watch, const struct permit_break *row)
+{
+    return watch->source.quiet_ns + time_from_minutes(row->minutes) +
+           (row->limit_included ? TIME_NS_PER_US : 0);
+}
+
+const struct permit_break *source_break_row(const struct watch *watch)
+{
+    const struct permit *permit = watch->permit;
+    bool dark = surroundings_dark(&watch->surroundings);
+    for (uint32_t i = 0; i < permit->n_breaks; i++)
+        if (watch->now_ns < row_over_ns(watch, &permit->breaks[i]) && !(dark && permit->breaks[i].daylight))
+            return &permit->breaks[i];
+    return source_break(watch);
+}
+
 int64_t source_break_over_ns(const struct watch *watch)
 {
-    int64_t limit = time_from_s(source_break(watch)->minutes * 60);
-    return watch->source.quiet_ns + limit + (source_break(watch)->limit_included ? TIME_NS_PER_US : 0);
+    if (watch->phase == PHASE_POST_WATCH && watch->permit->post_watch_minutes > 0)
+        return watch->source.quiet_ns + time_from_minutes(watch->permit->post_watch_minutes);
+    return row_over_ns(watch, source_break(watch));
+}
+
+/* When what the source may do in a break changes next. */
+static int64_t break_due_ns(const struct watch *watch)
+{
+    int64_t due = source_break_over_ns(watch), row_ns = row_over_ns(watch, source_break_row(watch));
+    return row_ns > watch->now_ns && row_ns < due ? row_ns : due;
 }
 
 static int64_t silence_ns(const struct watch *watch)
@@ -267,8 +291,8 @@ int64_t source_due_ns(const struct watch *watch)
     int64_t due = too_long_ns(watch);
     if (watch->source.heard && silence_ns(watch) < due)
         due = silence_ns(watch);
-    if (in_break(watch) && source_break_over_ns(watch) > watch->now_ns && source_break_over_ns(watch) < due)
-        due = source_break_over_ns(watch);
+    if (in_break(watch) && break_due_ns(watch) > watch->now_ns && break_due_ns(watch) < due)
+        due = break_due_ns(watch);
     return due;
 }
 
@@ -353,6 +377,19 @@ static void judge_start(struct watch *watch, enum phase from)
     watch_say_finding(watch, code, "firm", &why);
 }
 
+/* After the shortest break the source may only come back by a soft start. */
+static void judge_resumption(struct watch *watch, enum phase to)
+{
+    struct why why;
+    if (to == PHASE_SOFT_START || !source_break_row(watch)->soft_start)
+        return;
+    why_reset(&why, watch->permit->break_clause,
+              "the source resumes after %.1f min of silence without a soft start",
+              time_to_s(watch->now_ns - watch->source.quiet_ns) / 60);
+    why_add_cause(&why, watch->phase_id);
+    watch_say_finding(watch, "soft start missing", "firm", &why);
+}
+
 static void judge_full_power(struct watch *watch, enum phase from)
 {
     struct source *source = &watch->source;
@@ -385,7 +422,9 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
     }
     if (begins && conditions_need_pre_watch(watch, to)) {
         judge_start(watch, from);
-        if (from != PHASE_BREAK)
+        if (from == PHASE_BREAK)
+            judge_resumption(watch, to);
+        else
             conditions_judge_start(watch);
     }
     if (to == PHASE_FULL_POWER)

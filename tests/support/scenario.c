@@ -4,6 +4,7 @@
 #include "base/time.h"
 #include "support/scenario_inner.h"
 #include <ctype.h>
+#include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -109,14 +110,27 @@ static void play_given(struct player *player, const char *text)
         player->setup.listening[0] = (UINT32_C(1) << (unsigned)number) - 1;
     else if (sscanf(text, "doubt of distances %lf", &number) == 1)
         player->setup.sighting_log_spread = number;
+    else if (sscanf(text, "depth %lf m", &number) == 1)
+        player->setup.depth_m = number;
+    else if (sscanf(text, "array of %lf m", &number) == 1)
+        permit_set_edge(&player->permit, number / 2);
+    else if (sscanf(text, "position %lf %lf", &player->setup.ranges.latitude_deg,
+                    &player->setup.ranges.longitude_deg) == 2)
+        player->setup.ranges.has_source = true;
+    else if (player_after(text, "time ") && time_parse_utc(text + 5, &player->zero_unix_ns) == STATUS_OK)
+        player->has_clock = true;
     else
         player_complain(player, "cannot read what is given: '%s'", text);
 }
 
 static void create(struct player *player)
 {
-    if (!player->watch && watch_create(&player->setup, &player->watch) != STATUS_OK)
+    if (player->watch)
+        return;
+    if (watch_create(&player->setup, &player->watch) != STATUS_OK)
         player_complain(player, "the watch cannot be made");
+    else if (player->has_clock)
+        watch_set_clock(player->watch, player->zero_unix_ns);
 }
 
 static void nothing_is_left(struct player *player)
@@ -217,7 +231,9 @@ bool scenario_play(const char *path, const struct permit *permit, bool writes_al
     player->problem_size = problem_size;
     player->run = 1;
     player->sink = (struct outcome_sink){take, player};
-    player->setup = (struct watch_setup){.permit = permit,
+    player->permit = *permit;
+    player->sel_db = NAN;
+    player->setup = (struct watch_setup){.permit = &player->permit,
                                          .contact_gap_s = 300,
                                          .look_evidence = 4,
                                          .act_evidence = 8,

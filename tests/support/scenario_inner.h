@@ -26,6 +26,11 @@ struct player {
     /* phase, advice and finding outcomes that no line has expected yet */
     unsigned n_pending;
     struct outcome pending[MAX_PENDING];
+    double sel_db, sel_step_db; /* of the first impulse of the present row, and from each to the next */
+    unsigned n_blows;
+    int64_t zero_unix_ns; /* with has_clock */
+    bool has_clock;
+    struct permit permit;                                       /* placed for the source's extent */
     int64_t next_impulse_ns, impulse_step_ns, impulse_until_ns; /* step 0: none */
 };
 
@@ -44,6 +49,15 @@ void player_outcome_text(const struct outcome *outcome, char *out, size_t size);
 void player_pass_to(struct player *player, int64_t to_ns); /* time, and the blows that fall meanwhile */
 void player_restart(struct player *player, const char *text, int64_t at_ns);
 void player_event(struct player *player, const char *text);
+void player_push(struct player *player, struct event *event, int64_t known_ns);
+void player_push_note(struct player *player, struct note *note);
+/* A field of a note from text; complains where it is not allowed. */
+bool player_set(struct player *player, struct note *note, const char *field, const char *value);
+/* What stands before the fields " (FIELD VALUE; ...)" of a line; those are set. */
+void player_split_fields(struct player *player, struct note *note, const char *text, char *out, size_t size);
+
+/* scenario_work.c: what the work and the sea do; false where it is another line */
+bool player_work(struct player *player, const char *text);
 
 /* scenario_expect.c: what must follow */
 void player_expect(struct player *player, int64_t at_ns, const char *text);
