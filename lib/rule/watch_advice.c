@@ -37,7 +37,7 @@ static void need_start(const struct watch *watch, struct wanted *wanted)
     }
     struct why why;
     int64_t until_ns = -1, last_ns = watch->now_ns;
-    for (unsigned i = 0; conditions_hold(watch, i, &why, &until_ns); i++) {
+    for (unsigned i = 0; (i = conditions_hold(watch, i, &why, &until_ns)) != 0;) {
         snprintf(text, sizeof text, "an end of this: %.120s", why.text);
         need(wanted, text);
         last_ns = until_ns < 0 || last_ns < 0 ? -1 : until_ns > last_ns ? until_ns : last_ns;
@@ -213,8 +213,10 @@ static bool want_condition(const struct watch *watch, struct wanted *wanted)
     struct why why;
     int64_t until_ns;
     bool waits = watch->phase == PHASE_PRE_WATCH || watch->phase == PHASE_DETERRENT;
-    if (!waits || !effort_complete(watch) || !conditions_hold(watch, 0, &why, &until_ns))
+    unsigned number = waits && effort_complete(watch) ? conditions_hold(watch, 0, &why, &until_ns) : 0;
+    if (!number)
         return false;
+    wanted->key.condition = number;
     ground(wanted, watch, ADVICE_DO_NOT_START, GROUND_CONDITION, why.clause, why.text);
     for (uint32_t i = 0; i < why.n_causes; i++)
         why_add_cause(&wanted->why, why.causes[i]);
@@ -308,7 +310,8 @@ static void settle_station(struct watch *watch, enum station station)
         return;
     struct watch_advice *present = in_force(watch, station);
     bool same = present && key->word == wanted.key.word && key->ground == wanted.key.ground &&
-                key->contact == wanted.key.contact && key->confirmed == wanted.key.confirmed;
+                key->contact == wanted.key.contact && key->condition == wanted.key.condition &&
+                key->confirmed == wanted.key.confirmed;
     if (!same) {
         add_end(watch, key, &wanted);
         why_add_cause(&wanted.why, watch->recent.causes[0]);

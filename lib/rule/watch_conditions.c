@@ -8,12 +8,12 @@ static const struct condition *const all[] = {
 };
 #define N_CONDITIONS (sizeof all / sizeof all[0])
 
-bool conditions_hold(const struct watch *watch, unsigned n, struct why *why, int64_t *until_ns)
+unsigned conditions_hold(const struct watch *watch, unsigned from, struct why *why, int64_t *until_ns)
 {
-    for (size_t i = 0; i < N_CONDITIONS; i++)
-        if (all[i]->holds && all[i]->holds(watch, why, until_ns) && n-- == 0)
-            return true;
-    return false;
+    for (unsigned i = from; i < N_CONDITIONS; i++)
+        if (all[i]->holds && all[i]->holds(watch, why, until_ns))
+            return i + 1;
+    return 0;
 }
 
 enum permit_action conditions_ask(const struct watch *watch, struct why *why)
@@ -77,8 +77,9 @@ void conditions_judge_start(struct watch *watch)
         int64_t until_ns;
         if (!all[i]->holds || !all[i]->holds(watch, &why, &until_ns))
             continue;
+        if (watch->source.unallowed < ACTION_STOP)
+            memcpy(watch->source.unallowed_why, why.text, sizeof watch->source.unallowed_why);
         watch->source.unallowed = ACTION_STOP;
-        memcpy(watch->source.unallowed_why, why.text, sizeof watch->source.unallowed_why);
         why_add_cause(&why, watch->phase_id);
         watch_say_finding(watch, all[i]->finding, "firm", &why);
     }

@@ -187,7 +187,8 @@ enum advice_ground {
 struct advice_key {
     enum advice_word word;
     enum advice_ground ground;
-    uint32_t contact; /* 0: none */
+    uint32_t contact;   /* 0: none */
+    uint32_t condition; /* its number; 0: none */
     bool confirmed;
 };
 
@@ -293,9 +294,9 @@ void source_keep_stop(struct watch *watch, const struct contact *contact);
 void source_enter_phase(struct watch *watch, enum phase from, enum phase to); /* findings, times */
 
 /* watch_conditions.c */
-/* The n-th condition (from 0) that holds a start back now, why and until when at the earliest (-1: unknown);
- * false where there are no more. */
-bool conditions_hold(const struct watch *watch, unsigned n, struct why *why, int64_t *until_ns);
+/* The first condition after number `after` (0: of all) that holds a start back now: its number, from 1; why,
+ * and until when at the earliest (-1: unknown). 0 where there is none. */
+unsigned conditions_hold(const struct watch *watch, unsigned after, struct why *why, int64_t *until_ns);
 /* The strongest that they ask for while the source sounds, and why; ACTION_LOG for nothing. */
 enum permit_action conditions_ask(const struct watch *watch, struct why *why);
 int64_t conditions_due_ns(const struct watch *watch);

@@ -165,6 +165,7 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
 {
     const char *missing;
     char names[FLOW_TEXT_SIZE];
+    int64_t until_ns;
     effort_names(watch, names);
     if (watch->phase == PHASE_OFF)
         why_reset(why, watch->permit->pre_watch_clause, "the watch is kept: %.200s", names);
@@ -174,6 +175,10 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
                   source_break(watch)->minutes);
     else if (watch->phase == PHASE_POST_WATCH)
         why_reset(why, watch->permit->pre_watch_clause, "the watch goes on after the work: %.200s", names);
+    else if (effort_complete(watch) && conditions_hold(watch, 0, why, &until_ns))
+        return;
+    else if (watch->phase == PHASE_DETERRENT)
+        why_reset(why, watch->permit->deterrent.clause, "the deterrent has ended, and the pre-watch goes on");
     else if (watch->phase == PHASE_READY && effort_kept(watch, &missing))
         why_reset(why, watch->permit->pre_watch_clause,
                   "part of the pre-watch was not kept or not heard: it is no longer complete");
@@ -190,6 +195,8 @@ static void make_reason(const struct watch *watch, enum phase to, struct why *wh
         why_delay(watch, why);
     else if (to == PHASE_READY)
         why_ready(watch, why);
+    else if (to == PHASE_DETERRENT)
+        why_reset(why, watch->permit->deterrent.clause, "the deterrent works");
     else if (to == PHASE_PRE_WATCH)
         why_pre_watch(watch, why);
     else if (to == PHASE_OFF)

@@ -364,6 +364,9 @@ static void judge_start(struct watch *watch, enum phase from)
         code = *watch->released_by ? NULL : "start without release";
         unallowed = ACTION_HOLD; /* all is ready: a release makes it good */
         why_reset(&why, permit->pre_watch_clause, "the source starts and no observer has released the start");
+    } else if (effort_complete(watch)) { /* conditions hold it back: conditions_judge_start says which */
+        code = "start without release";
+        why_reset(&why, permit->pre_watch_clause, "the source starts and no observer has released the start");
     } else {
         code = "start without a complete pre-watch";
         why_reset(&why, permit->pre_watch_clause, "the source starts after %.1f of %g min of pre-watch",
