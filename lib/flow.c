@@ -62,6 +62,7 @@ static const char *const whose_words[] = {
 
 static const char *const from_words[] = {
     [BEARING_NONE] = "", [BEARING_TRUE] = "true", [BEARING_AHEAD] = "ahead"};
+static const char *const basis_words[] = {"by entry", "by sound", "by both"};
 static const char *const form_words[] = {
     [CALL_TONE] = "tone", [CALL_TRAIN] = "train", [CALL_NOISE] = "noise"};
 
@@ -142,4 +143,9 @@ const char *bearing_from_text(enum bearing_from from)
 const char *call_form_text(enum call_form form)
 {
     return TEXT_OF(form_words, form);
+}
+
+const char *finding_basis_text(enum finding_basis basis)
+{
+    return TEXT_OF(basis_words, basis);
 }

@@ -170,7 +170,12 @@ struct advice_outcome {
     char causes[FLOW_MAX_CAUSES][FLOW_ID_SIZE];
 };
 
+/* What a finding rests on: what people entered, what was heard, or both. What rests on sound alone is to be
+ * explained. */
+enum finding_basis { BASIS_ENTRY, BASIS_SOUND, BASIS_BOTH };
+
 struct finding_outcome {
+    enum finding_basis basis;
     char code[NOTE_NAME_SIZE];
     char clause[FLOW_TEXT_SIZE];
     char job[IMPULSE_JOB_SIZE];
@@ -319,5 +324,6 @@ const char *unheard_cause_text(enum unheard_cause cause);
 const char *impulse_whose_text(enum impulse_whose whose);
 const char *bearing_from_text(enum bearing_from from); /* "true", "ahead", "" */
 const char *call_form_text(enum call_form form);
+const char *finding_basis_text(enum finding_basis basis); /* "by entry", "by sound", "by both" */
 
 #endif

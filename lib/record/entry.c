@@ -269,6 +269,7 @@ static enum status finding_body(const struct outcome *outcome, struct text *out)
     const struct finding_outcome *finding = &outcome->as.finding;
     struct body body;
     body_begin(&body, out);
+    body_text(&body, "basis", finding_basis_text(finding->basis));
     body_causes(&body, finding->n_causes, finding->causes);
     body_text_or_null(&body, "clause", finding->clause);
     body_text(&body, "code", finding->code);

@@ -92,7 +92,7 @@ const struct schema_object views_schema[] = {
         COLUMN("advice") COLUMN("reason") COLUMN("clause") COLUMN("station") COLUMN("until")
         COLUMN("requires") COLUMN("confirmed") COLUMN("job") COLUMN("causes")),
     VIEW("finding",
-        COLUMN("code") COLUMN("clause") COLUMN("job") COLUMN("grade") COLUMN("detail") COLUMN("causes")),
+        COLUMN("code") COLUMN("clause") COLUMN("job") COLUMN("basis") COLUMN("grade") COLUMN("detail") COLUMN("causes")),
     VIEW("note",
         COLUMN("note") COLUMN("person") COLUMN("watch") COLUMN("station") COLUMN("occurred_s")
         COLUMN("known_s") COLUMN("contact") COLUMN_GROUP COLUMN("species") COLUMN("number") COLUMN("calf")

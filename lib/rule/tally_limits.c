@@ -86,6 +86,7 @@ static void fill(const struct criterion *criterion, const char *code, enum zone_
     snprintf(out->code, sizeof out->code, "%s", code);
     tally_clause(criterion, out->clause);
     snprintf(out->job, sizeof out->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
+    out->basis = BASIS_SOUND;
     snprintf(out->grade, sizeof out->grade, "%s", zone_grade_text(grade));
 }
 

@@ -58,7 +58,8 @@ bool tally_quieting_finding(const struct quieting *quieting, const char *job, st
     double fall_db;
     if (!quieting_falls(quieting, &fall_db))
         return false;
-    *out = (struct finding_outcome){.code = TALLY_QUIETING_FALLS, .grade = "indicative"};
+    *out =
+        (struct finding_outcome){.code = TALLY_QUIETING_FALLS, .basis = BASIS_SOUND, .grade = "indicative"};
     snprintf(out->job, sizeof out->job, "%.*s", IMPULSE_JOB_SIZE - 1, job);
     snprintf(out->detail, sizeof out->detail,
              "the quieting measure takes off %.1f dB less than in its first impulses", fall_db);

@@ -204,6 +204,7 @@ struct watch {
     int64_t phase_since_ns;
     struct why phase_why;
     char phase_id[FLOW_ID_SIZE];
+    unsigned phase_on; /* whether it rests on entries, on sound (watch_say.c) */
     char finding_id[FLOW_ID_SIZE]; /* the last one's */
     char released_by[NOTE_NAME_SIZE];
     char release_id[FLOW_ID_SIZE];

@@ -79,6 +79,35 @@ void watch_say_contact(struct watch *watch, struct contact *contact)
         memcpy((into)->causes, (why)->causes, sizeof(into)->causes);                                         \
     } while (0)
 
+/* What kind of entry an id names: "run.stream.kind.counter". */
+static bool is_kind(const char *id, const char *kind)
+{
+    const char *at = strchr(id, '.');
+    at = at ? strchr(at + 1, '.') : NULL;
+    size_t n = strlen(kind);
+    return at && strncmp(at + 1, kind, n) == 0 && at[1 + n] == '.';
+}
+
+#define ON_ENTRY 1U
+#define ON_SOUND 2U
+
+/* What people entered, what was heard; phases and contacts rest on what they came from. */
+static unsigned rests_on(const struct watch *watch, uint32_t n_causes, const char (*causes)[FLOW_ID_SIZE])
+{
+    static const char *const sounds[] = {"impulse", "call", "unheard", "level"};
+    unsigned on = 0;
+    for (uint32_t i = 0; i < n_causes; i++) {
+        if (is_kind(causes[i], "note"))
+            on |= ON_ENTRY;
+        for (size_t k = 0; k < sizeof sounds / sizeof sounds[0]; k++)
+            if (is_kind(causes[i], sounds[k]))
+                on |= ON_SOUND;
+        if (is_kind(causes[i], "phase") && strcmp(causes[i], watch->phase_id) == 0)
+            on |= watch->phase_on;
+    }
+    return on;
+}
+
 void watch_say_phase(struct watch *watch, enum phase phase, const struct why *why)
 {
     struct outcome outcome;
@@ -87,12 +116,17 @@ void watch_say_phase(struct watch *watch, enum phase phase, const struct why *wh
     memcpy(outcome.as.phase.reason, why->text, sizeof why->text);
     FILL_WHY(&outcome.as.phase, why);
     give(watch, &outcome, watch->phase_id);
+    watch->phase_on = rests_on(watch, why->n_causes, why->causes);
 }
 
 void watch_say_finding(struct watch *watch, const char *code, const char *grade, const struct why *why)
 {
     struct outcome outcome;
     start_outcome(watch, OUTCOME_FINDING, &outcome);
+    unsigned on = rests_on(watch, why->n_causes, why->causes);
+    outcome.as.finding.basis = on == ON_SOUND                ? BASIS_SOUND
+                               : on == (ON_SOUND | ON_ENTRY) ? BASIS_BOTH
+                                                             : BASIS_ENTRY;
     snprintf(outcome.as.finding.code, sizeof outcome.as.finding.code, "%s", code);
     snprintf(outcome.as.finding.grade, sizeof outcome.as.finding.grade, "%s", grade);
     memcpy(outcome.as.finding.detail, why->text, sizeof why->text);

@@ -49,6 +49,11 @@ const char *player_read_clock(const char *text, int64_t *out_ns)
     return text + used;
 }
 
+const char *player_basis_text(enum finding_basis basis)
+{
+    return basis == BASIS_SOUND ? ", by sound" : basis == BASIS_BOTH ? ", by both" : "";
+}
+
 /* An outcome in the words of the file. */
 void player_outcome_text(const struct outcome *outcome, char *out, size_t size)
 {
@@ -65,7 +70,8 @@ void player_outcome_text(const struct outcome *outcome, char *out, size_t size)
                  outcome->as.advice.confirmed ? "" : ", not yet confirmed", outcome->as.advice.reason,
                  outcome->as.advice.clause, *until ? until : "unknown");
     } else if (outcome->kind == OUTCOME_FINDING)
-        snprintf(out, size, "%s => finding %s%s because \"%s\"", at, outcome->as.finding.code,
+        snprintf(out, size, "%s => finding %s%s%s because \"%s\"", at, outcome->as.finding.code,
+                 player_basis_text(outcome->as.finding.basis),
                  strcmp(outcome->as.finding.grade, "firm") == 0 ? "" : ", indicative",
                  outcome->as.finding.detail);
     else

@@ -102,7 +102,7 @@ static void compare(struct player *player, int64_t at_ns, const char *head, cons
         compare_texts(player, wanted, advice->reason, advice->clause, advice->n_causes, advice->causes);
     } else {
         const struct finding_outcome *finding = &outcome->as.finding;
-        snprintf(got, sizeof got, "finding %s%s", finding->code,
+        snprintf(got, sizeof got, "finding %s%s%s", finding->code, player_basis_text(finding->basis),
                  strcmp(finding->grade, "firm") == 0 ? "" : ", indicative");
         compare_texts(player, wanted, finding->detail, finding->clause, finding->n_causes, finding->causes);
     }

@@ -42,6 +42,8 @@ void player_clock_text(int64_t ns, char out[32]);
 const char *player_read_clock(const char *text, int64_t *out_ns);
 /* The rest of text after a prefix, NULL where it has another beginning. */
 const char *player_after(const char *text, const char *prefix);
+/* ", by sound", ", by both", "". */
+const char *player_basis_text(enum finding_basis basis);
 /* An outcome in the words of the file. */
 void player_outcome_text(const struct outcome *outcome, char *out, size_t size);
 
