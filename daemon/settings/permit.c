@@ -1,6 +1,7 @@
 /* The permit loader: every value with its mark and its source, every error with its line. */
 #include "settings/permit.h"
 #include "settings/permit_parts.h"
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -45,6 +46,38 @@ static void check_fills(const struct permit_reader *reader, const char *name, st
                          reader->fills->fills[i].key);
 }
 
+/* Where the file says the key, or what it is part of: "zones[0].radius_m" is zones.[0].radius_m there. */
+static unsigned line_of(const struct reader *file, const char *key)
+{
+    char path[2 * PERMIT_NAME_SIZE];
+    size_t n = 0;
+    for (const char *at = key; *at && n + 2 < sizeof path; at++) {
+        if (*at == '[')
+            path[n++] = '.';
+        path[n++] = *at;
+    }
+    path[n] = '\0';
+    for (;;) {
+        const config_setting_t *setting = config_lookup(&file->config, path);
+        char *end = strrchr(path, '.');
+        if (setting)
+            return (unsigned)config_setting_source_line(setting);
+        if (!end)
+            return 0;
+        *end = '\0';
+    }
+}
+
+/* One sentence of permit_check, "KEY: what is wrong". */
+static void say_problem(struct reader *file, const char *problem)
+{
+    char key[PERMIT_TEXT_SIZE];
+    const char *sentence = strstr(problem, ": ");
+    snprintf(key, sizeof key, "%.*s", sentence ? (int)(sentence - problem) : 0, problem);
+    problems_add(file->problems, file->path, line_of(file, key), key, "%s",
+                 sentence ? sentence + 2 : problem);
+}
+
 static enum status load(struct reader *file, enum status status, const struct permit_fills *fills,
                         struct permit *out)
 {
@@ -61,7 +94,7 @@ static enum status load(struct reader *file, enum status status, const struct pe
     char problem[PERMIT_TEXT_SIZE];
     bool readable = permit && status == STATUS_OK && problems->count == before;
     for (uint32_t i = 0; readable && permit_check(permit, i, problem) != STATUS_OK; i++)
-        problems_add(problems, file->path, 0, "", "%s", problem);
+        say_problem(file, problem);
     if (!permit)
         status = STATUS_NO_MEMORY;
     else if (status == STATUS_OK && problems->count != before)

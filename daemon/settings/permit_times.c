@@ -5,6 +5,7 @@
 #include <stdio.h>
 
 #define LONGEST_MINUTES 1440.0
+#define LONGEST_SOFT_START_MINUTES 240.0 /* more is a time in seconds */
 
 static void read_pre_watch_row(struct permit_reader *reader, struct group_reader *group, bool is_row)
 {
@@ -75,7 +76,8 @@ static void read_soft_start(struct permit_reader *reader, struct group_reader *r
     struct permit_soft_start *soft = &reader->permit->soft_start;
     struct group_reader group;
     group_child(root, "soft_start", READER_REQUIRED, &group);
-    value_number(reader, &group, "least_minutes", READER_REQUIRED, 0, LONGEST_MINUTES, &soft->least_minutes);
+    value_number(reader, &group, "least_minutes", READER_REQUIRED, 0, LONGEST_SOFT_START_MINUTES,
+                 &soft->least_minutes);
     soft->longest_minutes = soft->longest_to_line_minutes = INFINITY;
     value_number(reader, &group, "longest_minutes", READER_OPTIONAL, 0.01, LONGEST_MINUTES,
                  &soft->longest_minutes);
@@ -131,6 +133,7 @@ static void read_deterrent(struct permit_reader *reader, struct group_reader *ro
     deterrent->stated = value_part(root, "deterrent", &group, deterrent->clause);
     if (!deterrent->stated)
         return;
+    value_flag(reader, &group, "required", READER_OPTIONAL, &deterrent->stated);
     value_number(reader, &group, "least_minutes", READER_REQUIRED, 0, LONGEST_MINUTES,
                  &deterrent->least_minutes);
     value_number(reader, &group, "longest_minutes", READER_OPTIONAL, 0.01, LONGEST_MINUTES,

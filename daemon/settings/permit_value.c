@@ -39,8 +39,8 @@ static bool start(struct permit_reader *reader, const struct group_reader *group
     group_string(&out->group, "source", READER_REQUIRED, out->value.source, sizeof out->value.source);
     if (out->fill) {
         out->value.mark = MARK_FILLED;
-        snprintf(out->value.source, sizeof out->value.source, "%.60s: %.190s", out->fill->who,
-                 out->fill->source);
+        memcpy(out->value.source, out->fill->source, sizeof out->value.source);
+        memcpy(out->value.who, out->fill->who, sizeof out->value.who);
         return true;
     }
     if (marked && mark == MARK_MEMORY_LOW)
@@ -310,8 +310,15 @@ void value_action(struct permit_reader *reader, const struct group_reader *group
     struct reading reading;
     unsigned word = ACTION_LOG;
     if (!start(reader, group, &reading)) {
+        group_know(&reading.group, "phases");
         group_done(&reading.group);
         return;
+    }
+    struct permit_fill bare; /* a ledger keeps the action with its phases */
+    if (reading.fill) {
+        bare = *reading.fill;
+        bare.text[strcspn(bare.text, " ")] = '\0';
+        reading.fill = &bare;
     }
     read_word(&reading, words, 6, &word);
     char name[PERMIT_NAME_SIZE], phases[PERMIT_TEXT_SIZE] = "", text[PERMIT_TEXT_SIZE];

@@ -39,14 +39,16 @@ static void read_found(struct permit_reader *reader, struct group_reader *group,
     zone->found = found;
 }
 
-static void read_species(struct permit_reader *reader, struct group_reader *group, struct permit_zone *zone)
+/* Zones and clearance times name them alike. */
+static void read_species(struct permit_reader *reader, struct group_reader *group, uint32_t *n_species,
+                         char species[PERMIT_MAX_SPECIES][NOTE_NAME_SIZE], enum species_policy *unknown)
 {
     static const char *const words[] = {NULL, "listed", "other"};
     unsigned policy = SPECIES_NOT_STATED;
-    zone->n_species = value_texts(reader, group, "species", READER_OPTIONAL, zone->species[0],
-                                  sizeof zone->species[0], PERMIT_MAX_SPECIES);
-    value_word(reader, group, "species_unknown", zone->n_species > 0, words, 3, &policy);
-    zone->species_unknown = (enum species_policy)policy;
+    *n_species = value_texts(reader, group, "species", READER_OPTIONAL, species[0], sizeof species[0],
+                             PERMIT_MAX_SPECIES);
+    value_word(reader, group, "species_unknown", *n_species > 0, words, 3, &policy);
+    *unknown = (enum species_policy)policy;
 }
 
 static void read_zone(struct permit_reader *reader, struct group_reader *group, struct permit_zone *zone)
@@ -59,14 +61,14 @@ static void read_zone(struct permit_reader *reader, struct group_reader *group, 
     value_flag(reader, group, "any_distance", READER_OPTIONAL, &any_distance);
     zone->radius_m = any_distance ? INFINITY : 0;
     if (!any_distance)
-        value_number(reader, group, "radius_m", READER_REQUIRED, 1, 100000, &zone->radius_m);
+        value_number(reader, group, "radius_m", READER_REQUIRED, 5, 100000, &zone->radius_m);
     value_word(reader, group, "origin", READER_REQUIRED, origins, 5, &origin);
     zone->origin = (enum zone_origin)origin;
     value_groups(reader, group, "groups", READER_REQUIRED, &zone->groups);
     read_found(reader, group, zone);
     value_flag(reader, group, "calf_only", READER_OPTIONAL, &zone->calf_only);
     value_number(reader, group, "least_number", READER_OPTIONAL, 1, 1000, &zone->least_number);
-    read_species(reader, group, zone);
+    read_species(reader, group, &zone->n_species, zone->species, &zone->species_unknown);
     read_actions(reader, group, zone);
     group_done(group);
 }
@@ -95,6 +97,7 @@ void permit_read_clearances(struct permit_reader *reader, struct group_reader *r
         struct permit_clearance *clearance = &permit->clearances[permit->n_clearances++];
         group_at(root, "clearances", i, &group);
         value_groups(reader, &group, "groups", READER_REQUIRED, &clearance->groups);
+        read_species(reader, &group, &clearance->n_species, clearance->species, &clearance->species_unknown);
         value_number(reader, &group, "minutes", READER_REQUIRED, 0.01, 1440, &clearance->minutes);
         value_flag(reader, &group, "leaving_ends", READER_REQUIRED, &clearance->leaving_ends);
         group_string(&group, "clause", READER_REQUIRED, clearance->clause, sizeof clearance->clause);

@@ -145,14 +145,15 @@ static bool same_species(const char *a, const char *b)
     return *a == *b;
 }
 
-static bool is_listed(const struct permit_zone *zone, const struct contact *contact)
+static bool is_listed(uint32_t n, const char species[PERMIT_MAX_SPECIES][NOTE_NAME_SIZE],
+                      enum species_policy unknown, const struct contact *contact)
 {
-    if (zone->n_species == 0)
+    if (n == 0)
         return true;
     if (!*contact->species)
-        return zone->species_unknown == SPECIES_LISTED;
-    for (uint32_t i = 0; i < zone->n_species && i < PERMIT_MAX_SPECIES; i++)
-        if (same_species(zone->species[i], contact->species))
+        return unknown == SPECIES_LISTED;
+    for (uint32_t i = 0; i < n && i < PERMIT_MAX_SPECIES; i++)
+        if (same_species(species[i], contact->species))
             return true;
     return false;
 }
@@ -162,7 +163,8 @@ static bool zone_covers(const struct permit_zone *zone, const struct contact *co
     uint32_t found = (contact->seen ? PERMIT_SEEN : 0) | (contact->n_calls > 0 ? PERMIT_HEARD : 0);
     return (zone->groups & PERMIT_GROUP_BIT(contact->group)) != 0 && (zone->found & found) != 0 &&
            (!zone->calf_only || contact->calf) &&
-           (zone->least_number <= 1 || contact->animals >= zone->least_number) && is_listed(zone, contact);
+           (zone->least_number <= 1 || contact->animals >= zone->least_number) &&
+           is_listed(zone->n_species, zone->species, zone->species_unknown, contact);
 }
 
 void contact_detect(struct contact *contact, const struct permit *permit, int64_t when_ns)
@@ -219,12 +221,17 @@ void contact_end_episode(struct contact *contact)
     contact->order = ACTION_LOG;
 }
 
+/* A row of its species holds in place of its group's, which stands before it. */
 static const struct permit_clearance *clearance_of(const struct contact *contact, const struct permit *permit)
 {
-    for (uint32_t i = 0; i < permit->n_clearances; i++)
-        if (permit->clearances[i].groups & PERMIT_GROUP_BIT(contact->group))
-            return &permit->clearances[i];
-    return NULL;
+    const struct permit_clearance *found = NULL;
+    for (uint32_t i = 0; i < permit->n_clearances; i++) {
+        const struct permit_clearance *row = &permit->clearances[i];
+        if ((row->groups & PERMIT_GROUP_BIT(contact->group)) &&
+            is_listed(row->n_species, row->species, row->species_unknown, contact))
+            found = row;
+    }
+    return found;
 }
 
 int64_t contact_clearance_ns(const struct contact *contact, const struct permit *permit)

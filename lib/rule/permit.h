@@ -49,6 +49,7 @@ struct permit_value {
     char key[PERMIT_NAME_SIZE];
     char text[PERMIT_TEXT_SIZE]; /* the value as written */
     char source[PERMIT_TEXT_SIZE];
+    char who[PERMIT_NAME_SIZE]; /* of a value that the site states: who says so; empty for all others */
     enum value_mark mark;
 };
 
@@ -75,8 +76,12 @@ struct permit_zone {
     char clause[PERMIT_TEXT_SIZE];
 };
 
+/* A row that names species holds for these in place of their group's row; it stands after that row. */
 struct permit_clearance {
     uint32_t groups;
+    uint32_t n_species; /* 0: any */
+    char species[PERMIT_MAX_SPECIES][NOTE_NAME_SIZE];
+    enum species_policy species_unknown;
     double minutes;    /* since the last detection inside a zone */
     bool leaving_ends; /* seen leaving ends it at once */
     char clause[PERMIT_TEXT_SIZE];
@@ -93,7 +98,7 @@ struct permit_break {
 
 /* A deterrent before the first impulse. */
 struct permit_deterrent {
-    bool stated;            /* false: the permit has none */
+    bool stated;            /* false: the permit requires none */
     double least_minutes;   /* it must have worked so long */
     double longest_minutes; /* and at most so long; INFINITY */
     double gap_minutes;     /* from its end to the first impulse at most; INFINITY */
@@ -269,9 +274,10 @@ struct permit {
     struct permit_value values[PERMIT_MAX_VALUES]; /* every value with its mark, for people and the ledger */
 };
 
-/* The first thing that makes the permit unusable (no zone, a group without unknown policy, a timer without
- * bound ...): STATUS_OUT_OF_RANGE and a sentence in out_problem; call with n = 0, 1, 2 ... for the n-th
- * problem; STATUS_OK when there are no more. */
+/* The n-th thing that makes the permit unusable (no zone, a group without unknown policy, a timer without
+ * bound, a phase that nobody can leave ...): STATUS_OUT_OF_RANGE and "KEY: a sentence" in out_problem, where
+ * KEY is that of the permit file ("zones[0].radius_m", "break"); call with n = 0, 1, 2 ...; STATUS_OK when
+ * there are no more. */
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE]);
 
 /* Distances are stated from the source's middle: says how far its edge is from there. */

@@ -1,38 +1,12 @@
-/* What makes a permit usable, said one problem at a time. */
-#include "rule/permit.h"
-#include <math.h>
-#include <stdarg.h>
-#include <stdio.h>
+/* What makes a permit usable, said one problem at a time, each with the key of the permit file. */
+#include "rule/permit_search.h"
 #include <string.h>
 
-#define LONGEST_MINUTES 1440.0
-
-/* Counts problems and keeps the one that is wanted. */
-struct search {
-    uint32_t wanted, seen;
-    char *out;
-};
-
-__attribute__((format(printf, 2, 3))) static void problem(struct search *search, const char *format, ...)
+static void need_text(struct permit_search *search, const char *key, const char *name, const char *text)
 {
-    if (search->seen++ != search->wanted)
-        return;
-    va_list arguments;
-    va_start(arguments, format);
-    vsnprintf(search->out, PERMIT_TEXT_SIZE, format, arguments);
-    va_end(arguments);
-}
-
-static void need_minutes(struct search *search, const char *name, double minutes)
-{
-    if (!(minutes > 0 && minutes <= LONGEST_MINUTES))
-        problem(search, "%s is %g minutes; allowed: more than 0, at most %g", name, minutes, LONGEST_MINUTES);
-}
-
-static void need_text(struct search *search, const char *name, const char *text)
-{
+    permit_look_at(search, "%s", key);
     if (!*text)
-        problem(search, "%s is not stated", name);
+        permit_problem(search, "%s is not stated", name);
 }
 
 static bool before_sound(enum phase phase)
@@ -42,208 +16,181 @@ static bool before_sound(enum phase phase)
            phase == PHASE_POST_WATCH;
 }
 
-static void check_zone(struct search *search, const struct permit_zone *zone)
+/* A distance from what the activity does not have would never be measured. */
+static bool fits_activity(enum zone_origin origin, enum permit_activity activity)
 {
-    need_text(search, "a zone's name", zone->name);
-    if (!*zone->clause)
-        problem(search, "zone '%.60s': its clause is not stated", zone->name);
-    if (!(zone->radius_m > 0))
-        problem(search, "zone '%.60s': radius is %g m; allowed: more than 0", zone->name, zone->radius_m);
-    if ((unsigned)zone->origin > ORIGIN_VESSEL)
-        problem(search, "zone '%.60s' has no origin", zone->name);
-    if (zone->groups == 0 || (zone->groups & ~PERMIT_ALL_GROUPS) != 0)
-        problem(search, "zone '%.60s' names no known group", zone->name);
-    if ((zone->found & (PERMIT_SEEN | PERMIT_HEARD)) == 0)
-        problem(search, "zone '%.60s' counts neither what is seen nor what is heard", zone->name);
-    if (zone->n_species > 0 && zone->species_unknown == SPECIES_NOT_STATED)
-        problem(search, "zone '%.60s' names species and does not say what one unknown means", zone->name);
-    bool acts = false;
-    for (unsigned i = 0; i < PHASE_COUNT; i++) {
-        enum permit_action action = zone->action[i];
-        acts = acts || action != ACTION_LOG;
-        bool fits = before_sound((enum phase)i) ? action <= ACTION_DELAY : action != ACTION_DELAY;
-        if ((unsigned)action > ACTION_STOP || !fits)
-            problem(search, "zone '%.60s': the action in phase %s cannot be '%s'", zone->name,
-                    phase_text((enum phase)i), permit_action_text(action));
-    }
-    if (!acts)
-        problem(search, "zone '%.60s' asks for nothing in any phase", zone->name);
+    return origin == ORIGIN_VESSEL || (origin == ORIGIN_PILE && activity == ACTIVITY_PILING) ||
+           (origin == ORIGIN_CHARGE && activity == ACTIVITY_EXPLOSIVES) ||
+           ((origin == ORIGIN_ARRAY_CENTRE || origin == ORIGIN_ARRAY_EDGE) && activity == ACTIVITY_SEISMIC);
 }
 
-static void check_clearances(struct search *search, const struct permit *permit, uint32_t zone_groups)
+static void check_zone_groups(struct permit_search *search, const struct permit_zone *zone, uint32_t i)
+{
+    permit_look_at(search, "zones[%u].groups", i);
+    if (zone->groups == 0 || (zone->groups & ~PERMIT_ALL_GROUPS) != 0)
+        permit_problem(search, "zone '%.60s' names no known group", zone->name);
+    permit_look_at(search, "zones[%u].found", i);
+    if ((zone->found & (PERMIT_SEEN | PERMIT_HEARD)) == 0)
+        permit_problem(search, "zone '%.60s' counts neither what is seen nor what is heard", zone->name);
+    permit_look_at(search, "zones[%u].species", i);
+    if (zone->n_species > 0 && zone->species_unknown == SPECIES_NOT_STATED)
+        permit_problem(search, "zone '%.60s' names species and does not say what one unknown means",
+                       zone->name);
+}
+
+static void check_zone_actions(struct permit_search *search, const struct permit_zone *zone, uint32_t i)
+{
+    bool acts = false;
+    permit_look_at(search, "zones[%u].actions", i);
+    for (unsigned k = 0; k < PHASE_COUNT; k++) {
+        enum permit_action action = zone->action[k];
+        acts = acts || action != ACTION_LOG;
+        bool fits = before_sound((enum phase)k) ? action <= ACTION_DELAY : action != ACTION_DELAY;
+        if ((unsigned)action > ACTION_STOP || !fits)
+            permit_problem(search, "zone '%.60s': the action in phase %s cannot be '%s'", zone->name,
+                           phase_text((enum phase)k), permit_action_text(action));
+    }
+    if (!acts)
+        permit_problem(search, "zone '%.60s' asks for nothing in any phase", zone->name);
+}
+
+static void check_zone(struct permit_search *search, const struct permit *permit, uint32_t i)
+{
+    const struct permit_zone *zone = &permit->zones[i];
+    permit_look_at(search, "zones[%u]", i);
+    if (!*zone->name)
+        permit_problem(search, "a zone's name is not stated");
+    if (!*zone->clause)
+        permit_problem(search, "zone '%.60s': its clause is not stated", zone->name);
+    for (uint32_t k = 0; k < i; k++)
+        if (*zone->name && strcmp(zone->name, permit->zones[k].name) == 0)
+            permit_problem(search, "another zone is called '%.60s'", zone->name);
+    permit_look_at(search, "zones[%u].radius_m", i);
+    if (!(zone->radius_m > 0))
+        permit_problem(search, "zone '%.60s': radius is %g m; allowed: more than 0", zone->name,
+                       zone->radius_m);
+    permit_look_at(search, "zones[%u].origin", i);
+    if ((unsigned)zone->origin > ORIGIN_VESSEL)
+        permit_problem(search, "zone '%.60s' has no origin", zone->name);
+    else if (!fits_activity(zone->origin, permit->activity))
+        permit_problem(search, "zone '%.60s' begins at the %s, which %s has not", zone->name,
+                       permit_origin_text(zone->origin), permit_activity_text(permit->activity));
+    check_zone_groups(search, zone, i);
+    check_zone_actions(search, zone, i);
+}
+
+/* A row that names species stands beside the row of its groups, not in its place. */
+static void check_clearances(struct permit_search *search, const struct permit *permit, uint32_t zone_groups)
 {
     uint32_t covered = 0;
     for (uint32_t i = 0; i < permit->n_clearances && i < PERMIT_MAX_CLEARANCES; i++) {
         const struct permit_clearance *clearance = &permit->clearances[i];
-        need_minutes(search, "a clearance time", clearance->minutes);
-        need_text(search, "the clause of a clearance time", clearance->clause);
-        for (unsigned g = 0; g < GROUP_COUNT; g++)
-            if (covered & clearance->groups & PERMIT_GROUP_BIT(g))
-                problem(search, "group %s has two clearance times", group_text((enum group)g));
-        covered |= clearance->groups;
+        permit_look_at(search, "clearances[%u].minutes", i);
+        permit_need_minutes(search, "a clearance time", clearance->minutes);
+        permit_look_at(search, "clearances[%u]", i);
+        if (!*clearance->clause)
+            permit_problem(search, "the clause of a clearance time is not stated");
+        permit_look_at(search, "clearances[%u].species", i);
+        if (clearance->n_species > 0 && clearance->species_unknown == SPECIES_NOT_STATED)
+            permit_problem(search, "a clearance time names species and does not say what one unknown means");
+        permit_look_at(search, "clearances[%u].groups", i);
+        for (unsigned g = 0; g < GROUP_COUNT; g++) {
+            bool again = (covered & clearance->groups & PERMIT_GROUP_BIT(g)) != 0;
+            if (clearance->n_species == 0 && again)
+                permit_problem(search, "group %s has two clearance times", group_text((enum group)g));
+            if (clearance->n_species > 0 && !again && (clearance->groups & PERMIT_GROUP_BIT(g)))
+                permit_problem(search,
+                               "group %s has a time for some species and none before it for all others",
+                               group_text((enum group)g));
+        }
+        covered |= clearance->n_species == 0 ? clearance->groups : 0;
     }
+    permit_look_at(search, "clearances");
     for (unsigned g = 0; g < GROUP_COUNT; g++)
         if (zone_groups & ~covered & PERMIT_GROUP_BIT(g))
-            problem(search, "group %s is in a zone and has no clearance time", group_text((enum group)g));
+            permit_problem(search,
+                           "group %s is in a zone and has no clearance time: a delay for it would never end",
+                           group_text((enum group)g));
 }
 
-static void check_zones(struct search *search, const struct permit *permit)
+/* Every group is in a zone, as heard or seen, or is stated as neither by 'ignore'. */
+static void check_groups(struct permit_search *search, const struct permit *permit, uint32_t zone_groups)
 {
+    permit_look_at(search, "unknown_distance");
+    for (unsigned g = 0; g < GROUP_COUNT; g++) {
+        enum unknown_policy policy = permit->unknown[g];
+        if (policy == UNKNOWN_NOT_STATED || (unsigned)policy > UNKNOWN_IGNORE)
+            permit_problem(
+                search, "group %s: what a call of unknown distance means is not stated; there is no default",
+                group_text((enum group)g));
+        else if (zone_groups && !(zone_groups & PERMIT_GROUP_BIT(g)) && policy != UNKNOWN_IGNORE)
+            permit_problem(search,
+                           "group %s is in no zone, heard or seen, and unknown distance means '%s'; allowed: "
+                           "ignore, or a zone",
+                           group_text((enum group)g), permit_unknown_text(policy));
+    }
+}
+
+static void check_zones(struct permit_search *search, const struct permit *permit)
+{
+    permit_look_at(search, "zones");
     if (permit->n_zones == 0 || permit->n_zones > PERMIT_MAX_ZONES)
-        problem(search, "there are %u zones; allowed: 1 to %d", permit->n_zones, PERMIT_MAX_ZONES);
+        permit_problem(search, "there are %u zones; allowed: 1 to %d", permit->n_zones, PERMIT_MAX_ZONES);
+    permit_look_at(search, "clearances");
     if (permit->n_clearances == 0 || permit->n_clearances > PERMIT_MAX_CLEARANCES)
-        problem(search, "there are %u clearance times; allowed: 1 to %d", permit->n_clearances,
-                PERMIT_MAX_CLEARANCES);
+        permit_problem(search, "there are %u clearance times; allowed: 1 to %d", permit->n_clearances,
+                       PERMIT_MAX_CLEARANCES);
     uint32_t zone_groups = 0;
     for (uint32_t i = 0; i < permit->n_zones && i < PERMIT_MAX_ZONES; i++) {
-        check_zone(search, &permit->zones[i]);
+        check_zone(search, permit, i);
         zone_groups |= permit->zones[i].groups;
     }
     check_clearances(search, permit, zone_groups);
-    for (unsigned g = 0; g < GROUP_COUNT; g++)
-        if (permit->unknown[g] == UNKNOWN_NOT_STATED || (unsigned)permit->unknown[g] > UNKNOWN_IGNORE)
-            problem(search,
-                    "group %s: what a call of unknown distance means is not stated; there is no default",
-                    group_text((enum group)g));
+    check_groups(search, permit, zone_groups);
 }
 
-static void check_pre_watches(struct search *search, const struct permit *permit)
+static void check_values(struct permit_search *search, const struct permit *permit)
 {
-    uint32_t n = permit->n_pre_watches;
-    if (n == 0 || n > PERMIT_MAX_PRE_WATCHES)
-        problem(search, "there are %u pre-watches; allowed: 1 to %d", n, PERMIT_MAX_PRE_WATCHES);
-    for (uint32_t i = 0; i < n && i < PERMIT_MAX_PRE_WATCHES; i++) {
-        const struct permit_pre_watch *row = &permit->pre_watches[i];
-        need_minutes(search, "the pre-watch", row->minutes);
-        if (!row->visual && !row->acoustic)
-            problem(search,
-                    "the pre-watch needs neither a visual nor an acoustic watch, so anybody could end it");
-        if (i > 0 && !(row->deeper_than_m > permit->pre_watches[i - 1].deeper_than_m))
-            problem(search, "the pre-watch for more than %g m of depth does not follow a shallower one",
-                    row->deeper_than_m);
-    }
-    if (!(permit->pre_watch_hole_minutes >= 0))
-        problem(search, "a hole in the watch of %g minutes; allowed: at least 0",
-                permit->pre_watch_hole_minutes);
-}
-
-static void check_soft_start(struct search *search, const struct permit_soft_start *soft)
-{
-    double least = soft->least_minutes, longest = soft->longest_minutes;
-    if (!(least >= 0 && least <= LONGEST_MINUTES))
-        problem(search, "the soft start's least time is %g minutes; allowed: 0 to %g", least,
-                LONGEST_MINUTES);
-    if (!(longest >= least && longest > 0))
-        problem(search, "the soft start's longest time is %g minutes; allowed: at least the least time",
-                longest);
-    if (!(soft->longest_to_line_minutes >= least))
-        problem(search,
-                "from the soft start to the line's begin at most %g minutes; allowed: at least its "
-                "least time",
-                soft->longest_to_line_minutes);
-    if (soft->step == STEP_LEVEL && !(soft->largest_step_db > 0))
-        problem(search, "the soft start's largest step is %g dB; allowed: more than 0",
-                soft->largest_step_db);
-    if (soft->bursts > 0 && !(soft->burst_s > 0 && soft->pause_s > 0))
-        problem(search, "bursts of %g s with pauses of %g s; allowed: more than 0", soft->burst_s,
-                soft->pause_s);
-}
-
-static void check_breaks(struct search *search, const struct permit *permit)
-{
-    uint32_t n = permit->n_breaks;
-    if (n == 0 || n > PERMIT_MAX_BREAKS)
-        problem(search, "there are %u breaks; allowed: 1 to %d", n, PERMIT_MAX_BREAKS);
-    for (uint32_t i = 0; i < n && i < PERMIT_MAX_BREAKS; i++) {
-        need_minutes(search, "the break", permit->breaks[i].minutes);
-        if (i > 0 && !(permit->breaks[i].minutes > permit->breaks[i - 1].minutes))
-            problem(search, "the break of %g minutes does not follow a shorter one",
-                    permit->breaks[i].minutes);
-    }
-    if (n > 0 && permit->breaks[0].daylight)
-        problem(search, "the shortest break is for the day only: nothing is said of the dark");
-}
-
-static void check_deterrent(struct search *search, const struct permit_deterrent *deterrent)
-{
-    if (!deterrent->stated)
-        return;
-    if (!(deterrent->least_minutes >= 0 && deterrent->least_minutes <= LONGEST_MINUTES))
-        problem(search, "the deterrent's least time is %g minutes; allowed: 0 to %g",
-                deterrent->least_minutes, LONGEST_MINUTES);
-    if (!(deterrent->longest_minutes >= deterrent->least_minutes && deterrent->longest_minutes > 0))
-        problem(search, "the deterrent's longest time is %g minutes; allowed: at least the least time",
-                deterrent->longest_minutes);
-}
-
-static void check_between(struct search *search, const struct permit *permit)
-{
-    const struct permit_start *start = &permit->start;
-    if (permit->turn.stated && !(permit->turn.step_up_minutes <= permit->turn.longest_minutes))
-        problem(search, "a line turn steps up within its last %g of at most %g minutes",
-                permit->turn.step_up_minutes, permit->turn.longest_minutes);
-    if (start->good_watch_minutes > 0 && !(start->good_watch_within_hours * 60 >= start->good_watch_minutes))
-        problem(search, "%g minutes of good watch cannot lie within %g hours", start->good_watch_minutes,
-                start->good_watch_within_hours);
-    if ((start->closed_from == 0) != (start->closed_to == 0))
-        problem(search, "the closed season lacks its first or its last day");
-    if (permit->outage.stated && !(permit->outage.day_minutes >= permit->outage.diagnose_minutes))
-        problem(search, "an outage may last %g minutes a day and be looked into for %g",
-                permit->outage.day_minutes, permit->outage.diagnose_minutes);
-    if (permit->override.leaves != ACTION_LOG && permit->override.leaves != ACTION_REDUCE)
-        problem(search, "an override leaves '%s'; allowed: log, reduce",
-                permit_action_text(permit->override.leaves));
-    if (!(permit->staff.longest_hours > 0 && permit->staff.day_hours > 0 && permit->staff.rest_hours >= 0))
-        problem(search, "watch hours of %g at a stretch and %g a day; allowed: more than 0",
-                permit->staff.longest_hours, permit->staff.day_hours);
-}
-
-static void check_decisions(struct search *search, const struct permit *permit)
-{
-    if (!(permit->confirm_countdown_s >= 0 && permit->confirm_countdown_s <= 600))
-        problem(search, "the observer's countdown is %g s; allowed: 0 to 600", permit->confirm_countdown_s);
-    if (!(permit->p_inside_prepare > 0 && permit->p_inside_prepare <= permit->p_inside_act &&
-          permit->p_inside_act <= 1))
-        problem(search, "P(inside) of %g to prepare and %g to act; allowed: 0 < prepare <= act <= 1",
-                permit->p_inside_prepare, permit->p_inside_act);
-    if (!(permit->post_watch_minutes >= 0 && permit->post_watch_minutes <= LONGEST_MINUTES))
-        problem(search, "a watch of %g minutes after the work; allowed: 0 to %g", permit->post_watch_minutes,
-                LONGEST_MINUTES);
-}
-
-static void check_values(struct search *search, const struct permit *permit)
-{
+    permit_look_at(search, "values");
     if (permit->n_values > PERMIT_MAX_VALUES)
-        problem(search, "there are %u values; allowed: at most %d", permit->n_values, PERMIT_MAX_VALUES);
+        permit_problem(search, "there are %u values; allowed: at most %d", permit->n_values,
+                       PERMIT_MAX_VALUES);
     for (uint32_t i = 0; i < permit->n_values && i < PERMIT_MAX_VALUES; i++) {
         const struct permit_value *value = &permit->values[i];
+        permit_look_at(search, "%.63s", value->key);
         if (value->mark == MARK_MEMORY_LOW)
-            problem(search, "%.60s rests on a low-confidence memory: the site has to fill it in", value->key);
+            permit_problem(search, "it rests on a low-confidence memory: the site has to fill it in");
         if (value->mark == MARK_TO_BE_FILLED)
-            problem(search, "%.60s is left to the site, which has not stated it", value->key);
+            permit_problem(search, "it is left to the site, which has not stated it");
+        if (value->mark == MARK_FILLED && !*value->who)
+            permit_problem(search, "it was filled in, and nobody says by whom");
         if (value->mark == MARK_INVENTED && !permit->demonstration)
-            problem(search, "%.60s is invented: only a demonstration permit may hold it", value->key);
+            permit_problem(search, "it is invented: only a demonstration permit may hold it");
         if (!*value->source)
-            problem(search, "%.60s: its source is not stated", value->key);
+            permit_problem(search, "its source is not stated");
     }
+}
+
+static void check_head(struct permit_search *search, const struct permit *permit)
+{
+    need_text(search, "id", "the permit's id", permit->id);
+    need_text(search, "title", "the permit's title", permit->title);
+    need_text(search, "document", "the permit's document", permit->document);
+    need_text(search, "pre_watch", "the clause of the pre-watch", permit->pre_watch_clause);
+    need_text(search, "unknown_distance", "the clause on unknown distance", permit->unknown_clause);
+    need_text(search, "soft_start", "the clause of the soft start", permit->soft_start.clause);
+    need_text(search, "break", "the clause on breaks", permit->break_clause);
+    permit_look_at(search, "document_sha256");
+    size_t n = strlen(permit->document_sha256);
+    if (n > 0 && (n != 64 || strspn(permit->document_sha256, "0123456789abcdef") != 64))
+        permit_problem(search, "it is no SHA-256: 64 characters of 0 to 9 and a to f");
 }
 
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE])
 {
-    struct search search = {.wanted = n, .out = out_problem};
-    need_text(&search, "the permit's id", permit->id);
-    need_text(&search, "the permit's title", permit->title);
-    need_text(&search, "the permit's document", permit->document);
-    need_text(&search, "the clause of the pre-watch", permit->pre_watch_clause);
-    need_text(&search, "the clause on unknown distance", permit->unknown_clause);
-    need_text(&search, "the clause of the soft start", permit->soft_start.clause);
-    need_text(&search, "the clause on breaks", permit->break_clause);
-    check_pre_watches(&search, permit);
-    check_soft_start(&search, &permit->soft_start);
-    check_breaks(&search, permit);
-    check_deterrent(&search, &permit->deterrent);
-    check_between(&search, permit);
-    check_decisions(&search, permit);
+    struct permit_search search = {.wanted = n, .out = out_problem};
+    check_head(&search, permit);
+    permit_check_times(&search, permit);
     check_zones(&search, permit);
     check_values(&search, permit);
     return search.seen > n ? STATUS_OUT_OF_RANGE : STATUS_OK;
