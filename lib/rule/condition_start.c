@@ -80,6 +80,12 @@ static bool is_closed(const struct watch *watch, struct why *why)
     return closed;
 }
 
+/* Whether a start in the dark needs anything. */
+static bool bound_in_the_dark(const struct permit_start *rule)
+{
+    return rule->dark != DARK_START_ALLOWED || rule->good_watch_minutes > 0 || rule->most_orders > 0;
+}
+
 static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
 {
     const struct permit_start *rule = &watch->permit->start;
@@ -89,13 +95,13 @@ static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
         return false;
     if (is_closed(watch, why))
         return true;
-    if (rule->dark == DARK_START_ALLOWED || !sees_poorly(watch, poor, until_ns))
+    if (!bound_in_the_dark(rule) || !sees_poorly(watch, poor, until_ns))
         return false;
     if (rule->dark == DARK_START_NEVER)
         why_reset(why, rule->clause, "%.120s: no start is allowed", poor);
-    else if (!effort_kept_as(watch, "acoustic"))
+    else if (rule->dark == DARK_START_ACOUSTIC && !effort_kept_as(watch, "acoustic"))
         why_reset(why, rule->clause, "%.120s, and no acoustic watch is kept", poor);
-    else if (effort_deaf(watch))
+    else if (rule->dark == DARK_START_ACOUSTIC && effort_deaf(watch))
         why_reset(why, rule->clause, "%.120s, and the acoustic watch cannot hear", poor);
     else if (!lacks_history(watch, poor, why))
         return false;
@@ -126,7 +132,7 @@ static int64_t due_ns(const struct watch *watch)
     int64_t due = INT64_MAX;
     if (!rule->stated)
         return due;
-    if (rule->dark != DARK_START_ALLOWED)
+    if (bound_in_the_dark(rule))
         due = surroundings_light_change_ns(&watch->surroundings);
     if (rule->closed_from && watch->surroundings.has_clock) {
         int64_t unix_ns = watch->surroundings.zero_unix_ns + watch->now_ns;
