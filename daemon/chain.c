@@ -40,11 +40,13 @@ struct chain {
     unsigned n_notes;
 };
 
-void chain_check(struct site *site, struct problems *problems)
+void chain_check(struct site *site, struct problems *problems, struct text *remarks)
 {
     struct rules *rules = NULL;
-    if (*site->permit && *site->calls && rules_load(site, problems, &rules) == STATUS_OK)
+    if (*site->permit && *site->calls && rules_load(site, problems, &rules) == STATUS_OK) {
+        rules_describe_permit(&rules->permit, remarks);
         rules_destroy(rules);
+    }
     for (uint32_t i = 0; i < site->n_streams; i++) {
         const struct input_kind *kind = input_find(site->streams[i].input);
         struct input_facts facts;

@@ -42,7 +42,8 @@ uint32_t chain_count_streams(const struct chain *chain);
 struct stream *chain_get_stream(struct chain *chain, uint32_t number); /* from 1; borrowed */
 
 /* Looks at what the settings name, without starting anything: permit, call catalogue, recordings and scenes
- * (a device or a pipe is not touched). Adds to problems. */
-void chain_check(struct site *site, struct problems *problems);
+ * (a device or a pipe is not touched). Adds to problems; adds to remarks what people must know of the permit.
+ */
+void chain_check(struct site *site, struct problems *problems, struct text *remarks);
 
 #endif

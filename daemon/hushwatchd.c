@@ -13,7 +13,8 @@
 static const char help[] =
     "usage: hushwatchd --config FILE [--check | --print]\n\n"
     "Keeps the watch that the settings describe, until SIGTERM or SIGINT.\n\n"
-    "  --check   only says what is wrong with the settings and the files that they name\n"
+    "  --check   only says what is wrong with the settings and the files that they name, and which\n"
+    "            values of the permit are unverified\n"
     "  --print   only shows every setting with its value\n\n"
     "Exit code: 0 good, 2 wrong use or settings, 3 the system failed.\n";
 
@@ -102,6 +103,7 @@ int main(int argc, char **argv)
 {
     static struct site site;
     struct problems problems = {0};
+    struct text remarks = {0};
     const char *config = NULL;
     enum mode mode = MODE_RUN;
     int code = read_options(argc, argv, &config, &mode);
@@ -109,7 +111,7 @@ int main(int argc, char **argv)
         return code < 0 ? EXIT_GOOD : code;
     enum status status = site_load(config, &problems, &site);
     if (mode != MODE_RUN)
-        chain_check(&site, &problems);
+        chain_check(&site, &problems, &remarks);
     if (mode == MODE_PRINT && site.effective.data)
         fputs(site.effective.data, stdout);
     if (mode == MODE_RUN && status == STATUS_OK)
@@ -118,8 +120,9 @@ int main(int argc, char **argv)
         fputs(problems.lines.data, stderr);
         code = EXIT_WRONG_USE;
     } else if (mode == MODE_CHECK)
-        printf("%s: good\n", config);
+        printf("%s: good\n%s", config, remarks.data ? remarks.data : "");
     site_destroy(&site);
     problems_destroy(&problems);
+    text_destroy(&remarks);
     return code;
 }

@@ -53,6 +53,37 @@ void rules_destroy(struct rules *rules)
     free(rules);
 }
 
+static void describe_value(const struct permit_value *value, struct text *out)
+{
+    text_format(out, "  %s = %s (%s; %s%s%s)\n", value->key, value->text, permit_mark_text(value->mark),
+                value->who, *value->who ? ": " : "", value->source);
+}
+
+void rules_describe_permit(const struct permit *permit, struct text *out)
+{
+    uint32_t n_unverified = 0, n_filled = 0;
+    for (uint32_t i = 0; i < permit->n_values; i++) {
+        n_unverified += mark_unverified(permit->values[i].mark);
+        n_filled += permit->values[i].mark == MARK_FILLED;
+    }
+    text_format(out, "permit %s: %s%s%s\n", permit->id, permit->document, *permit->revision ? "; " : "",
+                permit->revision);
+    if (permit->demonstration)
+        text_append(out, "it is a demonstration: never for work\n");
+    if (*permit->ended)
+        text_format(out, "this guideline has ENDED: it holds no more since %s\n", permit->ended);
+    text_format(out, "%u of %u values are unverified%s\n", n_unverified, permit->n_values,
+                n_unverified ? ": check each against the document before you rely on it" : "");
+    for (uint32_t i = 0; i < permit->n_values; i++)
+        if (mark_unverified(permit->values[i].mark))
+            describe_value(&permit->values[i], out);
+    if (n_filled > 0)
+        text_format(out, "%u are stated by the settings\n", n_filled);
+    for (uint32_t i = 0; i < permit->n_values; i++)
+        if (permit->values[i].mark == MARK_FILLED)
+            describe_value(&permit->values[i], out);
+}
+
 /* In the middle of the water; the latitude hardly matters in shallow water. */
 static double sound_speed_m_s(const struct site *site)
 {

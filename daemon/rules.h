@@ -26,6 +26,10 @@ struct rules {
 enum status rules_load(struct site *site, struct problems *problems, struct rules **out);
 void rules_destroy(struct rules *rules);
 
+/* What people must know of the permit before they rely on it, one line each: that it is a demonstration, that
+ * its guideline has ended, which values are unverified, and which the site states and who says so. */
+void rules_describe_permit(const struct permit *permit, struct text *out);
+
 /* Both borrow the rules. n_channels[i]: of stream i + 1. *out_tally is NULL where there are no criteria. */
 enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                const uint32_t *n_channels, struct watch **out);

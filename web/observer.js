@@ -158,10 +158,10 @@ function drawExplanation(state) {
 function drawPermit() {
   const permit = site.permit, doubtful = permit.values.filter((value) => value.unverified);
   setText($("site"), site.site || "Hushwatch");
-  setText($("permit_name"), permit.title + (permit.year ? " (" + permit.year + ")" : ""));
+  setText($("permit_name"), permit.title + (permit.year ? " (" + permit.year + ")" : "") + (permit.ended ? `: ENDED, it holds no more since ${permit.ended}` : ""));
   $("permit_name").classList.toggle("demonstration", permit.demonstration);
-  setText($("permit_values"), doubtful.length ? `${doubtful.length} of ${permit.values.length} values are unverified: check each against the document before you rely on it.` : "All values were read from the document.");
-  keyed($("values").tBodies[0], permit.values, (value) => value.key, () => el("tr"), (row, value) => cells(row, [value.key, value.value, value.mark + (value.unverified ? ": check" : ""), value.source]));
+  setText($("permit_values"), doubtful.length ? `${doubtful.length} of ${permit.values.length} values are unverified: check each against the document before you rely on it.` : "All values were read from the document or are stated by the site.");
+  keyed($("values").tBodies[0], permit.values, (value) => value.key, () => el("tr"), (row, value) => cells(row, [value.key, value.value, value.mark + (value.unverified ? ": check" : ""), (value.who ? value.who + ": " : "") + value.source]));
   $("sign").elements.station.replaceChildren(...site.stations.map((name) => el("option", { text: name })));
 }
 

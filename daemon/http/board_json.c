@@ -85,6 +85,7 @@ static void values(struct text *text, const struct permit *permit)
         json_text(text, "mark", permit_mark_text(value->mark));
         json_flag(text, "unverified", mark_unverified(value->mark));
         json_text(text, "source", value->source);
+        json_text(text, "who", value->who);
         text_append(text, "}");
     }
     text_append(text, "]");
@@ -99,6 +100,8 @@ static void permit_object(struct text *text, const struct permit *permit)
     json_text(text, "id", permit->id);
     json_text(text, "title", permit->title);
     json_text(text, "document", permit->document);
+    json_text(text, "revision", permit->revision);
+    json_text(text, "ended", permit->ended);
     json_number(text, "year", permit->year, 0);
     json_flag(text, "demonstration", permit->demonstration);
     json_text(text, "activity", (unsigned)permit->activity < 3 ? activities[permit->activity] : "unknown");

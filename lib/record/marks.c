@@ -55,6 +55,7 @@ static void put_value(struct text *out, const struct permit_value *value)
     body_text(&item, "mark", permit_mark_text(value->mark));
     put_text(&item, "source", value->source);
     body_text(&item, "value", value->text);
+    put_text(&item, "who", value->who);
     text_append(out, "}");
 }
 
@@ -67,8 +68,11 @@ enum status entry_body_permit(uint32_t run, uint64_t counter, const struct permi
     body_begin(&body, out);
     body_bool(&body, "demonstration", permit->demonstration);
     put_text(&body, "document", permit->document);
+    put_text(&body, "document_sha256", permit->document_sha256);
+    put_text(&body, "ended", permit->ended);
     body_id(&body, run, 0, "permit", counter);
     body_text(&body, "permit", permit->id);
+    put_text(&body, "revision", permit->revision);
     body_text(&body, "sha256", sha256);
     body_text(&body, "text", file_text);
     body_text(&body, "title", permit->title);

@@ -28,7 +28,8 @@ const struct schema_object views_schema[] = {
         COLUMN("outage_start_s") COLUMN("outage_end_s") COLUMN("start_from") COLUMN("input") COLUMN("permit")
         COLUMN("settings") COLUMN("version") COLUMN("build") COLUMN("cpu")),
     VIEW("permit",
-        COLUMN("permit") COLUMN("title") COLUMN("document") COLUMN("year") COLUMN("demonstration")
+        COLUMN("permit") COLUMN("title") COLUMN("document") COLUMN("revision") COLUMN("document_sha256")
+        COLUMN("ended") COLUMN("year") COLUMN("demonstration")
         COLUMN("sha256") COLUMN("text") ", json_extract(body, '$.values') AS \"values\""),
     VIEW("job", COLUMN("job") COLUMN("state") COLUMN("causes")),
     VIEW("source",

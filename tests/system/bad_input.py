@@ -93,6 +93,26 @@ def settings_files(place):
     done = subprocess.run([BUILD + "/hushwatchd", "--config", ROOT + "/config/demonstration.cfg", "--check"],
                           capture_output=True, text=True, timeout=30)
     check("the demonstration's settings are good", done.returncode == 0, done.stderr)
+    check("--check says what must be known of the permit", "never for work" in done.stdout and
+          "values are unverified: check each" in done.stdout and
+          "zones[0].radius_m = 500 (invented; for demonstrations and tests)" in done.stdout, done.stdout)
+    scene = 'input = "scene"; path = "%s/config/scenes/quiet.cfg";' % ROOT
+    ended = "config/permits/us-nmfs-gulf-2021.cfg"
+    open_permit = settings(place + "/open.cfg", permit=ended, stream=scene)
+    done = subprocess.run([BUILD + "/hushwatchd", "--config", open_permit, "--check"], capture_output=True, text=True, timeout=30)
+    refused("a permit with values to be filled is refused, each with line and key", done, "us-nmfs-gulf-2021.cfg:",
+            "break.watch_kept.mark", "zones[1].species_unknown.mark", "zones[4].species_unknown.mark",
+            "clearances[1].species_unknown.mark", "permit_values")
+    stated = "permit_values = ( %s );" % ", ".join(
+        '{ key = "%s"; value = "%s"; who = "nobody: invented for tests"; source = "invented for tests"; }' % (key, value)
+        for key, value in (("break.watch_kept", "counts"), ("zones[1].species_unknown", "listed"),
+                           ("zones[4].species_unknown", "listed"), ("clearances[1].species_unknown", "other")))
+    open_permit = settings(place + "/open.cfg", permit=ended, stream=scene, more=stated)
+    done = subprocess.run([BUILD + "/hushwatchd", "--config", open_permit, "--check"], capture_output=True, text=True, timeout=30)
+    check("with them stated it is taken, and what ended and who states what is said", done.returncode == 0 and
+          "has ENDED: it holds no more since 2026-04-19" in done.stdout and "4 are stated by the settings" in done.stdout and
+          "break.watch_kept = counts (filled; nobody: invented for tests: invented for tests)" in done.stdout,
+          done.stdout + done.stderr)
     done = subprocess.run([BUILD + "/hushwatchd", "--config", ROOT + "/config/demonstration.cfg", "--print"],
                           capture_output=True, text=True, timeout=30)
     check("--print shows settings and defaults", "contact.gap_s = 300  # default" in done.stdout and

@@ -497,9 +497,19 @@ static void marks_are_well_formed(void **state)
     assert_non_null(permit);
     permit->n_values = 2;
     snprintf(permit->values[0].key, PERMIT_NAME_SIZE, "pre_watch.minutes");
+    snprintf(permit->values[1].who, PERMIT_NAME_SIZE, "Ann Lee");
+    permit->values[1].mark = MARK_FILLED;
+    snprintf(permit->revision, PERMIT_TEXT_SIZE, "second edition");
+    snprintf(permit->ended, sizeof permit->ended, "2026-04-19");
+    snprintf(permit->document_sha256, sizeof permit->document_sha256, "%064d", 7);
     assert_int_equal(entry_body_permit(1, 1, permit, "abc", &body), STATUS_OK);
     free(permit);
     assert_well_formed(body.data, "1.0.permit.1");
+    assert_non_null(strstr(body.data, "\"ended\":\"2026-04-19\""));
+    assert_non_null(strstr(body.data, "\"revision\":\"second edition\""));
+    assert_non_null(strstr(body.data, "\"document_sha256\":\"0000"));
+    assert_non_null(
+        strstr(body.data, "\"mark\":\"filled\",\"source\":null,\"value\":\"\",\"who\":\"Ann Lee\""));
     /* FIPS 180-2, appendix B.1: SHA-256 of "abc" */
     assert_non_null(
         strstr(body.data, "\"ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad\""));
