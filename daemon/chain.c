@@ -251,7 +251,12 @@ static enum status begin_record(struct chain *chain)
     const struct site *site = chain->setup.site;
     files_build_id(build);
     files_cpu_name(cpu, sizeof cpu);
+    uint32_t n_channels[SITE_MAX_STREAMS];
+    for (uint32_t i = 0; i < chain->n_streams; i++)
+        n_channels[i] = stream_get_facts(chain->streams[i])->n_channels;
     struct run_facts facts = {.site = site->name,
+                              .n_streams = chain->n_streams,
+                              .n_channels = n_channels,
                               .settings = site->effective.data,
                               .permit = chain->rules->permit.id,
                               .version = HUSHWATCH_VERSION,

@@ -115,8 +115,8 @@ static void fill_ranges(const struct site *site, struct ranges_setup *out)
     }
 }
 
-enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
-                               const uint32_t *n_channels, struct watch **out)
+void rules_fill_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                      const uint32_t *n_channels, struct watch_setup *out)
 {
     struct watch_setup setup = {.permit = &rules->permit,
                                 .contact_gap_s = site->contact_gap_s,
@@ -135,6 +135,14 @@ enum status rules_create_watch(const struct rules *rules, const struct site *sit
             if (site->streams[i].channels[c].calibration.role != ROLE_MEASURE)
                 setup.listening[i] |= 1U << c;
     fill_ranges(site, &setup.ranges);
+    *out = setup;
+}
+
+enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                               const uint32_t *n_channels, struct watch **out)
+{
+    struct watch_setup setup;
+    rules_fill_watch(rules, site, n_streams, n_channels, &setup);
     return watch_create(&setup, out);
 }
 

@@ -30,6 +30,9 @@ void rules_destroy(struct rules *rules);
  * its guideline has ended, which values are unverified, and which the site states and who says so. */
 void rules_describe_permit(const struct permit *permit, struct text *out);
 
+/* What the watch is set up with; it borrows the rules. */
+void rules_fill_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
+                      const uint32_t *n_channels, struct watch_setup *out);
 /* Both borrow the rules. n_channels[i]: of stream i + 1. *out_tally is NULL where there are no criteria. */
 enum status rules_create_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                                const uint32_t *n_channels, struct watch **out);

@@ -173,27 +173,47 @@ static void read_set(struct group_reader *root, struct criteria *criteria)
     group_done(root);
 }
 
-enum status criteria_load(const char *path, struct problems *problems, struct text *effective,
-                          struct criteria *criteria)
+/* status: of opening. */
+static enum status load(struct reader *reader, enum status status, struct criteria *criteria)
 {
+    struct problems *problems = reader->problems;
     unsigned before = problems->count;
-    struct criteria *work = malloc(sizeof *work);
-    if (!work)
-        return STATUS_NO_MEMORY;
-    *work = *criteria;
-    struct reader reader;
-    enum status status = reader_open(&reader, path, problems, effective);
-    if (status == STATUS_OK) {
-        struct group_reader root = reader_root(&reader);
+    struct criteria *work = status == STATUS_OK ? malloc(sizeof *work) : NULL;
+    if (status == STATUS_OK && !work)
+        status = STATUS_NO_MEMORY;
+    if (work) {
+        *work = *criteria;
+        struct group_reader root = reader_root(reader);
         if (work->n_sets == CRITERIA_MAX_SETS)
             group_problem(&root, "id", "is one set too many; allowed: %d", CRITERIA_MAX_SETS);
         else
             read_set(&root, work);
         status = problems->count != before ? STATUS_BAD_FORMAT : STATUS_OK;
     }
-    reader_close(&reader);
+    reader_close(reader);
     if (status == STATUS_OK)
         *criteria = *work;
     free(work);
     return status;
+}
+
+enum status criteria_load(const char *path, struct problems *problems, struct text *effective,
+                          struct criteria *criteria)
+{
+    struct reader reader;
+    if (effective)
+        text_format(effective, "# %s\n", path);
+    enum status status = reader_open(&reader, path, problems, effective);
+    return load(&reader, status, criteria);
+}
+
+enum status criteria_load_effective(const char *name, const char *text, size_t length,
+                                    struct problems *problems, struct text *effective,
+                                    struct criteria *criteria)
+{
+    struct reader reader;
+    if (effective)
+        text_format(effective, "# %s\n", name);
+    enum status status = reader_open_effective(&reader, name, text, length, problems, effective);
+    return load(&reader, status, criteria);
 }

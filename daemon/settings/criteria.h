@@ -14,5 +14,9 @@
  * untouched then. */
 enum status criteria_load(const char *path, struct problems *problems, struct text *effective,
                           struct criteria *criteria);
+/* The same from effective settings; `length` bytes of text, without the line that names the file. */
+enum status criteria_load_effective(const char *name, const char *text, size_t length,
+                                    struct problems *problems, struct text *effective,
+                                    struct criteria *criteria);
 
 #endif

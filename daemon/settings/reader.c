@@ -3,6 +3,7 @@
 #include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 #include <unistd.h>
 
@@ -117,13 +118,27 @@ static void remember(struct group_reader *group, const char *key, bool from_file
 {
     if (!group->reader->effective)
         return;
-    char name[256], value[512];
+    char name[256], value[2048];
     full_key(group, key, name, sizeof name);
     va_list arguments;
     va_start(arguments, format);
     vsnprintf(value, sizeof value, format, arguments);
     va_end(arguments);
+    for (char *c = value; *c; c++) /* one setting, one line */
+        if ((unsigned char)*c < ' ')
+            *c = ' ';
     text_format(group->reader->effective, "%s = %s%s\n", name, value, from_file ? "" : "  # default");
+}
+
+/* The shortest text that is read as the very same number: a run is derived from it again. */
+static const char *number_text(double number, char out[32])
+{
+    for (int digits = 10; digits <= 17; digits++) {
+        snprintf(out, 32, "%.*g", digits, number);
+        if (!(strtod(out, NULL) < number) && !(strtod(out, NULL) > number))
+            break;
+    }
+    return out;
 }
 
 static bool is_number(const config_setting_t *setting, double *out)
@@ -163,7 +178,8 @@ bool group_number(struct group_reader *group, const char *key, bool required, do
 {
     config_setting_t *member = ask(group, key, required);
     bool good = member && number_in_range(group, key, member, min, max, value);
-    remember(group, key, good, "%.10g", *value);
+    char text[32];
+    remember(group, key, good, "%s", number_text(*value, text));
     return good;
 }
 
@@ -245,8 +261,9 @@ unsigned group_numbers(struct group_reader *group, const char *key, bool require
     for (unsigned i = 0; i < n; i++)
         if (!number_in_range(group, key, config_setting_get_elem(member, i), min, max, &values[i]))
             return 0;
+    char text[32];
     for (unsigned i = 0; i < n; i++)
-        remember(group, key, true, "[%u] %.10g", i, values[i]);
+        remember(group, key, true, "[%u] %s", i, number_text(values[i], text));
     return n;
 }
 

@@ -47,6 +47,10 @@ enum status reader_open(struct reader *reader, const char *path, struct problems
 /* The same from text; `name` stands for the path in messages. Both are borrowed until it is closed. */
 enum status reader_open_text(struct reader *reader, const char *name, const char *text,
                              struct problems *problems);
+/* The same from the effective settings of a file, as `effective` has them and a `run` entry keeps them: what
+ * stood in the file is taken, what did not gets this program's default. length: how much of text. */
+enum status reader_open_effective(struct reader *reader, const char *name, const char *text, size_t length,
+                                  struct problems *problems, struct text *effective);
 void reader_close(struct reader *reader);
 struct group_reader reader_root(struct reader *reader);
 

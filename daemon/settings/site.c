@@ -279,26 +279,42 @@ static void set_defaults(const char *path, struct site *site)
         snprintf(site->folder, sizeof site->folder, ".");
 }
 
+static void read_site(struct reader *reader, struct site *out)
+{
+    struct group_reader root = reader_root(reader);
+    group_string(&root, "name", READER_REQUIRED, out->name, sizeof out->name);
+    read_path(&root, out->folder, "ledger", READER_REQUIRED, out->ledger);
+    read_path(&root, out->folder, "permit", READER_REQUIRED, out->permit);
+    read_path(&root, out->folder, "calls", READER_REQUIRED, out->calls);
+    permit_read_fills(&root, &out->permit_fills);
+    group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
+    read_pages(&root, out);
+    read_evidence(&root, out);
+    source_settings_read(&root, out->folder, &out->source);
+    read_streams(&root, out);
+    position_settings_read(&root, &out->source.place, count_free(out), &out->position);
+    group_done(&root);
+}
+
 enum status site_load(const char *path, struct problems *problems, struct site *out)
 {
     struct reader reader;
     unsigned before = problems->count;
     set_defaults(path, out);
-    if (reader_open(&reader, path, problems, &out->effective) == STATUS_OK) {
-        struct group_reader root = reader_root(&reader);
-        group_string(&root, "name", READER_REQUIRED, out->name, sizeof out->name);
-        read_path(&root, out->folder, "ledger", READER_REQUIRED, out->ledger);
-        read_path(&root, out->folder, "permit", READER_REQUIRED, out->permit);
-        read_path(&root, out->folder, "calls", READER_REQUIRED, out->calls);
-        permit_read_fills(&root, &out->permit_fills);
-        group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
-        read_pages(&root, out);
-        read_evidence(&root, out);
-        source_settings_read(&root, out->folder, &out->source);
-        read_streams(&root, out);
-        position_settings_read(&root, &out->source.place, count_free(out), &out->position);
-        group_done(&root);
-    }
+    if (reader_open(&reader, path, problems, &out->effective) == STATUS_OK)
+        read_site(&reader, out);
+    reader_close(&reader);
+    return problems->count == before ? STATUS_OK : STATUS_BAD_FORMAT;
+}
+
+enum status site_load_effective(const char *name, const char *text, size_t length, struct problems *problems,
+                                struct site *out)
+{
+    struct reader reader;
+    unsigned before = problems->count;
+    set_defaults(name, out);
+    if (reader_open_effective(&reader, name, text, length, problems, &out->effective) == STATUS_OK)
+        read_site(&reader, out);
     reader_close(&reader);
     return problems->count == before ? STATUS_OK : STATUS_BAD_FORMAT;
 }

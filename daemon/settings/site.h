@@ -72,6 +72,9 @@ struct site {
 
 /* Reads and checks; adds to problems. STATUS_BAD_FORMAT when any was added. The caller destroys *out. */
 enum status site_load(const char *path, struct problems *problems, struct site *out);
+/* The same from effective settings, as a `run` entry keeps them; `length` bytes of text. */
+enum status site_load_effective(const char *name, const char *text, size_t length, struct problems *problems,
+                                struct site *out);
 void site_destroy(struct site *site);
 
 #endif

@@ -12,6 +12,15 @@ static void put_text(struct body *body, const char *key, const char *value)
     body_text_or_null(body, key, value ? value : "");
 }
 
+static void put_counts(struct body *body, const char *key, uint32_t n, const uint32_t *counts)
+{
+    body_key(body, key);
+    text_append(body->out, "[");
+    for (uint32_t i = 0; i < n; i++)
+        text_format(body->out, i ? ",%u" : "%u", counts[i]);
+    text_append(body->out, "]");
+}
+
 /* In lower-case hex. */
 static void hash_text(const char *text, char out[SHA256_SIZE])
 {
@@ -30,6 +39,7 @@ enum status entry_body_run(uint32_t run, const struct run_mark *mark, int64_t ze
     struct body body;
     body_begin(&body, out);
     put_text(&body, "build", said->build);
+    put_counts(&body, "channels", said->n_channels ? said->n_streams : 0, said->n_channels);
     put_text(&body, "command", said->command);
     put_text(&body, "cpu", said->cpu);
     body_id(&body, run, 0, "run", 1);

@@ -22,7 +22,9 @@ struct run_facts {
     const char *cpu;        /* ... on one kind of CPU */
     const char *command;    /* "watch" or "scan" */
     const char *start_from; /* how the start was known: "clock", "header", "modification time", "option" */
-    const char *input;      /* what is heard: recordings, devices, scene; one a line */
+    uint32_t n_streams;     /* that are heard ... */
+    const uint32_t *n_channels; /* ... and the channels of each; NULL for none */
+    const char *input;          /* what is heard: recordings, devices, scene; one a line */
 };
 
 /* mark: the outage before the run; the run starts at its outage_end_ns. zero_unix_ns: UTC of watch time zero
@@ -30,6 +32,13 @@ struct run_facts {
  * facts. */
 enum status entry_body_run(uint32_t run, const struct run_mark *mark, int64_t zero_unix_ns,
                            const struct run_facts *facts, struct text *out);
+
+/* What a rerun needs of a `run` and of a `permit` entry. Texts are reset first and the caller's to destroy.
+ * STATUS_NOT_FOUND where there is none (an older version's entry); STATUS_BAD_FORMAT, STATUS_NO_MEMORY. */
+#define ENTRY_MAX_STREAMS 8
+enum status entry_run_settings(const char *body, struct text *settings, uint32_t *n_streams,
+                               uint32_t n_channels[ENTRY_MAX_STREAMS]);
+enum status entry_permit_text(const char *body, struct text *text);
 
 /* The permit in force: its file's whole text, the text's SHA-256, and every value with its mark and source.
  */
