@@ -22,11 +22,12 @@ struct restored {
     struct restored_entry *missing; /* in order */
 };
 
-/* Pushes the inputs of the ledger into the watch, and what the watch says of them into the tally (NULL:
- * none); for continuous sound the tally is given the seconds of the `level` entries too. Its sums are then
- * those of what the ledger holds: seconds of a minute whose entry was not yet written are in none.
- * Conclusions that the ledger lacks are returned, so that they can be written first. STATUS_BAD_FORMAT with a
- * problem that names the entry. */
+/* Pushes the inputs of the ledger into the watch, each run's under its own permit and settings (replay.h),
+ * and what the watch says of them into the tally (NULL: none); what the watch and the tally were made with
+ * holds from the ledger's end on, for the watch, and for all of it for the tally. For continuous sound the
+ * tally is given the seconds of the `level` entries too. Its sums are then those of what the ledger holds:
+ * seconds of a minute whose entry was not yet written are in none. Conclusions that the ledger lacks are
+ * returned, so that they can be written first. STATUS_BAD_FORMAT with a problem that names the entry. */
 enum status restore_watch(struct ledger *ledger, struct watch *watch, struct tally *tally,
                           struct restored *out, char problem[LEDGER_PROBLEM_SIZE]);
 void restored_destroy(struct restored *restored);

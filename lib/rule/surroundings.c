@@ -79,6 +79,12 @@ static void look_anew(struct surroundings *surroundings)
     surroundings->light_until_ns = 0;
 }
 
+void surroundings_set_permit(struct surroundings *surroundings, const struct permit *permit)
+{
+    surroundings->day = permit->start;
+    look_anew(surroundings);
+}
+
 void surroundings_set_clock(struct surroundings *surroundings, int64_t zero_unix_ns)
 {
     surroundings->has_clock = true;

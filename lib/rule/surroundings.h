@@ -25,6 +25,8 @@ struct surroundings {
 
 /* All unknown. */
 void surroundings_reset(struct surroundings *surroundings, const struct permit *permit);
+/* Another permit bounds the day from now on. */
+void surroundings_set_permit(struct surroundings *surroundings, const struct permit *permit);
 /* What a note says of them; what it does not say stays as it was. */
 void surroundings_take(struct surroundings *surroundings, const struct note *note);
 

@@ -255,15 +255,26 @@ static void take_impulse(struct tally *tally, const struct outcome *outcome, con
     check_warning(tally, event->stream - 1, outcome->watch_ns, sink);
 }
 
+/* What the run before had said or not is no matter: the new run says all sums again in its first minute, so
+ * that a tally that was rebuilt from a ledger is one that was never interrupted. */
+static void begin_run(struct tally *tally, const struct outcome *outcome)
+{
+    tally->run = outcome->run;
+    tally->n_exposures = tally->n_sources = 0;
+    tally->said_minute = outcome->watch_ns / MINUTE_NS;
+    for (uint32_t i = 0; i < tally->setup.n_streams; i++) {
+        struct sums *sums = &tally->sums[i];
+        sums->n_findings = 0;
+        sums->changed = sums->channel > 0;
+        for (uint32_t c = 0; c < FLOW_MAX_CHANNELS; c++)
+            sums->channels[c].changed = tally_channel_heard(&sums->channels[c]);
+    }
+}
+
 static void take_event(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
 {
     const struct event *event = &outcome->as.event;
-    if (event->kind == EVENT_RUN) {
-        tally->run = outcome->run;
-        tally->n_exposures = tally->n_sources = 0;
-        for (uint32_t i = 0; i < tally->setup.n_streams; i++)
-            tally->sums[i].n_findings = 0;
-    } else if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
+    if (event->kind == EVENT_IMPULSE && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         take_impulse(tally, outcome, sink);
     else if (event->kind == EVENT_LEVEL && event->stream >= 1 && event->stream <= tally->setup.n_streams)
         tally_take_level(tally, event->stream, &event->as.level);
@@ -283,6 +294,10 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
 enum status tally_take(struct tally *tally, const struct outcome *outcome, const struct outcome_sink *sink)
 {
     int64_t minute = outcome->watch_ns / MINUTE_NS;
+    if (outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_RUN) {
+        begin_run(tally, outcome);
+        return STATUS_OK;
+    }
     if (minute != tally->said_minute) {
         tally->said_minute = minute;
         say_all(tally, outcome->watch_ns, sink);
@@ -297,6 +312,12 @@ enum status tally_take(struct tally *tally, const struct outcome *outcome, const
     if (outcome->kind == OUTCOME_EVENT)
         take_event(tally, outcome, sink);
     return STATUS_OK;
+}
+
+void tally_say(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)
+{
+    tally->said_minute = watch_ns / MINUTE_NS;
+    say_all(tally, watch_ns, sink);
 }
 
 enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)

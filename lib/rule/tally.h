@@ -70,5 +70,8 @@ enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct out
 void tally_set_silent(struct tally *tally, bool silent);
 void tally_set_said(struct tally *tally, const struct outcome *finding);
 bool tally_wants_levels(const struct tally *tally);
+/* Says now what was added since it was last said: when that was is known from a ledger alone, for what comes
+ * first in a minute is often a second of sound, which has no entry of its own. */
+void tally_say(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink);
 
 #endif

@@ -47,6 +47,60 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     return STATUS_OK;
 }
 
+static bool same_number(double a, double b)
+{
+    return (isnan(a) && isnan(b)) || !(a < b || a > b || isnan(a) || isnan(b));
+}
+
+static bool same_stream(const struct ranges_stream *a, const struct ranges_stream *b)
+{
+    bool same = a->has_position == b->has_position && same_number(a->latitude_deg, b->latitude_deg) &&
+                same_number(a->longitude_deg, b->longitude_deg);
+    for (uint32_t c = 0; c < RANGES_MAX_CHANNELS; c++)
+        for (uint32_t k = 0; k < 3; k++)
+            same = same && same_number(a->place_m[c][k], b->place_m[c][k]);
+    return same;
+}
+
+static bool same_source_place(const struct ranges_setup *a, const struct ranges_setup *b)
+{
+    return a->has_source == b->has_source && same_number(a->latitude_deg, b->latitude_deg) &&
+           same_number(a->longitude_deg, b->longitude_deg);
+}
+
+static bool same_ranges(const struct ranges_setup *a, const struct ranges_setup *b)
+{
+    bool same = a->moves == b->moves && same_number(a->oldest_s, b->oldest_s) &&
+                same_number(a->source_offset_m[0], b->source_offset_m[0]) &&
+                same_number(a->source_offset_m[1], b->source_offset_m[1]) && same_source_place(a, b) &&
+                a->n_streams == b->n_streams;
+    for (uint32_t i = 0; i < a->n_streams && same; i++)
+        same = same_stream(&a->streams[i], &b->streams[i]);
+    return same;
+}
+
+enum status watch_change(struct watch *watch, const struct watch_setup *setup)
+{
+    if (!setup_is_good(setup))
+        return STATUS_BAD_ARGUMENT;
+    const struct watch_setup *former = &watch->setup;
+    if (!same_ranges(&former->ranges, &setup->ranges))
+        ranges_reset(&watch->ranges, &setup->ranges);
+    if (!same_number(former->depth_m, setup->depth_m))
+        watch->surroundings.depth_m = setup->depth_m > 0 ? setup->depth_m : NAN;
+    if (setup->ranges.has_source && !same_source_place(&former->ranges, &setup->ranges))
+        surroundings_set_place(&watch->surroundings, setup->ranges.latitude_deg, setup->ranges.longitude_deg);
+    surroundings_set_permit(&watch->surroundings, setup->permit);
+    watch->setup = *setup;
+    watch->permit = setup->permit;
+    return STATUS_OK;
+}
+
+void watch_get_setup(const struct watch *watch, struct watch_setup *out)
+{
+    *out = watch->setup;
+}
+
 void watch_set_clock(struct watch *watch, int64_t zero_unix_ns)
 {
     surroundings_set_clock(&watch->surroundings, zero_unix_ns);

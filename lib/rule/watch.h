@@ -48,6 +48,14 @@ struct watch;
 enum status watch_create(const struct watch_setup *setup, struct watch **out);
 void watch_destroy(struct watch *watch);
 
+/* Another permit or other settings hold from now on; the permit is borrowed instead of the former. What was
+ * done, heard and said stays: people, the pre-watch that was kept, contacts, jobs. What the settings say of
+ * places is taken anew only where it differs. Before the `run` event of the run that brings them.
+ * STATUS_BAD_ARGUMENT as watch_create; nothing is changed then. */
+enum status watch_change(struct watch *watch, const struct watch_setup *setup);
+/* A copy of the setup in force. */
+void watch_get_setup(const struct watch *watch, struct watch_setup *out);
+
 /* The UTC of watch time zero, before the first event: without it nobody knows when the sun is up. */
 void watch_set_clock(struct watch *watch, int64_t zero_unix_ns);
 
