@@ -21,6 +21,8 @@ ALONE = ["system", "browser"]  # they measure deadlines: one at a time
 LIMIT_S = {"short": 900, "check": 420, "long": 1200}
 TAP = re.compile(r"^(ok|not ok)\b\s*(\d+)?\s*(?:-\s*)?(.*?)\s*(?:#\s*(SKIP)\b\s*(.*))?$", re.IGNORECASE)
 
+RERUN = re.compile(r"^# rerun (\d+) of (\d+) ledgers identical$")
+
 
 def discover(build, filters):
     found = []
@@ -68,13 +70,17 @@ def main():
     with open("tests/support/may-skip.txt") as allowed_file:
         allowed = [line.split("#")[0].strip() for line in allowed_file]
     passed, failed, skipped = 0, 0, 0
+    same, ledgers = 0, 0  # ledgers that were derived again
     failures = []
 
     def take(result):
-        nonlocal passed, failed, skipped
+        nonlocal passed, failed, skipped, same, ledgers
         path, code, output, seconds = result
         ok, bad, skip = 0, [], 0
         for line in output.splitlines():
+            again = RERUN.match(line)
+            if again:
+                same, ledgers = same + int(again.group(1)), ledgers + int(again.group(2))
             match = TAP.match(line)
             if not match:
                 continue
@@ -111,6 +117,8 @@ def main():
             take(future.result())
     for _, path, command in alone:
         take(run_one(path, command, environment, LIMIT_S[length]))
+    if ledgers:
+        print("figure: %d of %d ledgers that the tests made are the same when derived again" % (same, ledgers))
     if failures:
         print("failed in: " + " ".join(failures))
     print("%d passed, %d failed, %d skipped" % (passed, failed, skipped), flush=True)

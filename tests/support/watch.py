@@ -36,10 +36,33 @@ def finish():
     sys.exit(0 if all(_results) else 1)
 
 
+def rerun(ledger, *arguments):
+    return subprocess.run([BUILD + "/hushwatch", "rerun", ledger] + list(arguments), capture_output=True, text=True,
+                          timeout=300)
+
+
+def derive_again(place):
+    """Every ledger that a test leaves follows from its own inputs, to the byte. (What is no ledger is not opened.)"""
+    ledgers = [os.path.join(path, name) for path, _, names in os.walk(place) for name in sorted(names)
+               if name.endswith(".ledger")]
+    answers = [(ledger, done) for ledger, done in ((ledger, rerun(ledger)) for ledger in ledgers) if done.stdout]
+    if answers:
+        wrong = [(ledger, done.returncode, done.stdout, done.stderr) for ledger, done in answers if done.returncode != 0]
+        check("every ledger that this test leaves is the same when it is derived again", not wrong, wrong)
+        print("# rerun %d of %d ledgers identical" % (len(answers) - len(wrong), len(answers)), flush=True)
+
+
+class Folder(tempfile.TemporaryDirectory):
+    def __exit__(self, kind, error, trace):
+        if kind is None:
+            derive_again(self.name)
+        super().__exit__(kind, error, trace)
+
+
 def folder():
-    """A folder of this test's own under the build folder; it goes when the program ends."""
+    """A folder of this test's own under the build folder. At its end every ledger in it is derived again, then it goes."""
     os.makedirs(BUILD + "/try", exist_ok=True)
-    return tempfile.TemporaryDirectory(dir=BUILD + "/try")
+    return Folder(dir=BUILD + "/try")
 
 
 CALIBRATED = '{ role = "both"; sensitivity_db = -180.0; full_scale_v = 1.0; }'
