@@ -7,6 +7,7 @@
 #include "settings/permit.h"
 #include <math.h>
 #include <stdlib.h>
+#include <string.h>
 
 /* The settings say where the array's edge is. */
 static void place_zones(const struct site *site, struct rules *rules, struct problems *problems)
@@ -18,6 +19,24 @@ static void place_zones(const struct site *site, struct rules *rules, struct pro
                          "zone '%s' begins at the array's edge: the settings must say source.aperture_m",
                          rules->permit.zones[i].name);
     permit_set_edge(&rules->permit, aperture_m / 2);
+}
+
+static bool has_set(const struct criteria *criteria, const char *id)
+{
+    for (uint32_t i = 0; i < criteria->n_sets; i++)
+        if (strcmp(criteria->sets[i].id, id) == 0)
+            return true;
+    return false;
+}
+
+/* A limit of the permit that nobody holds the source against would be passed without a word. */
+static void check_limits(const struct site *site, const struct rules *rules, struct problems *problems)
+{
+    for (uint32_t i = 0; i < rules->permit.n_criteria; i++)
+        if (!has_set(&rules->criteria, rules->permit.criteria[i]))
+            problems_add(problems, site->permit, 0, "limits.criteria",
+                         "names '%s': the settings' source.criteria must name that file too",
+                         rules->permit.criteria[i]);
 }
 
 enum status rules_load(struct site *site, struct problems *problems, struct rules **out)
@@ -34,6 +53,8 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
         problems_add(problems, site->permit, 0, "", "cannot be read as text");
     if (permit == STATUS_OK)
         place_zones(site, rules, problems);
+    if (permit == STATUS_OK && criteria == STATUS_OK)
+        check_limits(site, rules, problems);
     enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
     if (problems->count != before)
         status = STATUS_BAD_FORMAT;

@@ -42,8 +42,8 @@ static void check_fills(const struct permit_reader *reader, const char *name, st
 {
     for (uint32_t i = 0; reader->fills && i < reader->fills->n; i++)
         if (!reader->used[i])
-            problems_add(problems, name, 0, "", "has no value \"%s\" that the settings' permit_values state",
-                         reader->fills->fills[i].key);
+            problems_add(problems, permit_fill_where(&reader->fills->fills[i]), 0, "permit_values",
+                         "%s has no value \"%s\"", name, reader->fills->fills[i].key);
 }
 
 /* Where the file says the key, or what it is part of: "zones[0].radius_m" is zones.[0].radius_m there. */

@@ -14,6 +14,7 @@ struct permit_fill {
     char text[PERMIT_TEXT_SIZE]; /* a number, true or false, a word, or names joined by ", " */
     char who[PERMIT_NAME_SIZE];
     char source[PERMIT_TEXT_SIZE];
+    char where[PERMIT_TEXT_SIZE]; /* file and line that state it, for messages; may be empty */
 };
 
 struct permit_fills {

@@ -17,6 +17,11 @@ struct reading {
     const struct permit_fill *fill; /* NULL: the file's own value holds */
 };
 
+const char *permit_fill_where(const struct permit_fill *fill)
+{
+    return *fill->where ? fill->where : "the settings";
+}
+
 static const struct permit_fill *find_fill(struct permit_reader *reader, const char *key)
 {
     for (uint32_t i = 0; reader->fills && i < reader->fills->n; i++)
@@ -86,7 +91,7 @@ static void close_reading(struct reading *reading, const char *text)
 
 static bool fill_problem(struct reading *reading, const char *allowed)
 {
-    problems_add(reading->group.reader->problems, "the settings", 0, "permit_values",
+    problems_add(reading->group.reader->problems, permit_fill_where(reading->fill), 0, "permit_values",
                  "%s is \"%.80s\"; allowed: %s", reading->value.key, reading->fill->text, allowed);
     return false;
 }
@@ -356,6 +361,9 @@ void permit_read_fills(struct group_reader *settings, struct permit_fills *out)
         struct group_reader group;
         struct permit_fill *fill = &out->fills[out->n++];
         group_at(settings, "permit_values", i, &group);
+        if (group.setting)
+            snprintf(fill->where, sizeof fill->where, "%.230s:%u", group.reader->path,
+                     (unsigned)config_setting_source_line(group.setting));
         group_string(&group, "key", READER_REQUIRED, fill->key, sizeof fill->key);
         group_string(&group, "who", READER_REQUIRED, fill->who, sizeof fill->who);
         group_string(&group, "source", READER_REQUIRED, fill->source, sizeof fill->source);

@@ -42,6 +42,9 @@ unsigned value_texts(struct permit_reader *reader, struct group_reader *parent, 
 bool value_groups(struct permit_reader *reader, struct group_reader *parent, const char *key, bool required,
                   uint32_t *out);
 
+/* The file and line of a value that the settings state, for messages; never NULL. */
+const char *permit_fill_where(const struct permit_fill *fill);
+
 /* Opens a part that a permit may lack and reads its clause: whether it is there. */
 bool value_part(struct group_reader *root, const char *key, struct group_reader *group,
                 char clause[PERMIT_TEXT_SIZE]);

@@ -1,35 +1,29 @@
 /* The shipped permits; see permits.h. */
 #include "support/permits.h"
+#include <dirent.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
-const char *const test_permit_ids[] = {
-    "accobams-2019",
-    "australia-2008",
-    "belgium-2018",
-    "brazil-2018",
-    "canada-2007",
-    "denmark-2022",
-    "germany-2013",
-    "ireland-2014-blasting",
-    "ireland-2014-piling",
-    "ireland-2014-seismic",
-    "netherlands",
-    "nz-2013-level-1",
-    "nz-2013-level-2",
-    "taiwan-2018",
-    "uk-explosives-2010",
-    "uk-explosives-2025",
-    "uk-piling-2010",
-    "uk-seismic-2017",
-    "us-gulf-2026",
-    "us-nmfs-coastal-works",
-    "us-nmfs-gulf-2021",
-    "us-nmfs-hrg",
-    "us-nmfs-wind",
-    "us-ntl-2016-g02",
-    NULL,
-};
+static int by_name(const void *a, const void *b)
+{
+    return strcmp(a, b);
+}
+
+unsigned test_list_permits(char ids[TEST_MAX_PERMITS][PERMIT_NAME_SIZE])
+{
+    unsigned n = 0;
+    DIR *folder = opendir("config/permits");
+    for (const struct dirent *entry; folder && n < TEST_MAX_PERMITS && (entry = readdir(folder)) != NULL;) {
+        const char *end = strstr(entry->d_name, ".cfg");
+        if (end && strcmp(entry->d_name, "demonstration.cfg") != 0)
+            snprintf(ids[n++], PERMIT_NAME_SIZE, "%.*s", (int)(end - entry->d_name), entry->d_name);
+    }
+    if (folder)
+        closedir(folder);
+    qsort(ids, n, sizeof ids[0], by_name);
+    return n;
+}
 
 bool test_permit_fills(const char *id, struct permit_fills *out)
 {

@@ -5,8 +5,10 @@
 #include "settings/permit.h"
 #include <stdbool.h>
 
-/* The ids of config/permits in alphabetical order without the demonstration's; NULL after the last. */
-extern const char *const test_permit_ids[];
+#define TEST_MAX_PERMITS 64
+
+/* The ids of config/permits in alphabetical order without the demonstration's; returns how many. */
+unsigned test_list_permits(char ids[TEST_MAX_PERMITS][PERMIT_NAME_SIZE]);
 
 /* What tests/support/permit-values.cfg states for a permit; n = 0 where it states nothing. Prints what is
  * wrong with the file and gives false. */

@@ -103,16 +103,29 @@ def settings_files(place):
     refused("a permit with values to be filled is refused, each with line and key", done, "us-nmfs-gulf-2021.cfg:",
             "break.watch_kept.mark", "zones[1].species_unknown.mark", "zones[4].species_unknown.mark",
             "clearances[1].species_unknown.mark", "permit_values")
-    stated = "permit_values = ( %s );" % ", ".join(
+    stated = 'source = { form = "array"; aperture_m = 20.0; }; permit_values = ( %s );' % ", ".join(
         '{ key = "%s"; value = "%s"; who = "nobody: invented for tests"; source = "invented for tests"; }' % (key, value)
         for key, value in (("break.watch_kept", "counts"), ("zones[1].species_unknown", "listed"),
                            ("zones[4].species_unknown", "listed"), ("clearances[1].species_unknown", "other")))
     open_permit = settings(place + "/open.cfg", permit=ended, stream=scene, more=stated)
     done = subprocess.run([BUILD + "/hushwatchd", "--config", open_permit, "--check"], capture_output=True, text=True, timeout=30)
+    wrong = settings(place + "/wrong-values.cfg", permit=ended, stream=scene, more=stated.replace("counts", "sometimes").replace(
+        "zones[4].species_unknown", "zones[7].species_unknown"))
+    refused("a stated value that is wrong is told with the settings' file and line",
+            subprocess.run([BUILD + "/hushwatchd", "--config", wrong, "--check"], capture_output=True, text=True, timeout=30),
+            "wrong-values.cfg:3: permit_values: break.watch_kept is \"sometimes\"; allowed: nothing, counts, stands",
+            "us-nmfs-gulf-2021.cfg has no value \"zones[7].species_unknown\"")
     check("with them stated it is taken, and what ended and who states what is said", done.returncode == 0 and
           "has ENDED: it holds no more since 2026-04-19" in done.stdout and "4 are stated by the settings" in done.stdout and
           "break.watch_kept = counts (filled; nobody: invented for tests: invented for tests)" in done.stdout,
           done.stdout + done.stderr)
+    with open(ROOT + "/config/permits/demonstration.cfg") as text, open(place + "/limit.cfg", "w") as out:
+        out.write(text.read() + 'limits = { criteria = { value = ["germany-2008"]; mark = "invented"; source = "x"; }; };\n')
+    for more, good in (("", False), ('source = { criteria = ["%s/config/criteria/germany-2008.cfg"]; };' % ROOT, True)):
+        site = settings(place + "/limited.cfg", permit=place + "/limit.cfg", stream=scene, more=more)
+        done = subprocess.run([BUILD + "/hushwatchd", "--config", site, "--check"], capture_output=True, text=True, timeout=30)
+        check("a limit of the permit is taken only with its criteria: %s" % good, (done.returncode == 0) == good and
+              ("limits.criteria: names 'germany-2008'" in done.stderr) != good, done.stdout[:300] + done.stderr)
     done = subprocess.run([BUILD + "/hushwatchd", "--config", ROOT + "/config/demonstration.cfg", "--print"],
                           capture_output=True, text=True, timeout=30)
     check("--print shows settings and defaults", "contact.gap_s = 300  # default" in done.stdout and
