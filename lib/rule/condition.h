@@ -17,7 +17,8 @@ struct condition {
     void (*take_note)(struct watch *watch, const struct note *note);
     void (*take_impulse)(struct watch *watch, const struct event *event); /* ours, of the reference channel */
     void (*enter_phase)(struct watch *watch, enum phase from, enum phase to);
-    void (*settle)(struct watch *watch); /* findings that time alone brings */
+    void (*settle)(struct watch *watch); /* before phase and advice: what time alone brings */
+    void (*follow)(struct watch *watch); /* after them */
     /* A timer for people, named and filled; false where there is none to show. */
     bool (*show)(const struct watch *watch, struct watch_timer *timer);
 };
@@ -31,5 +32,6 @@ extern const struct condition condition_turn;
 extern const struct condition condition_test;
 extern const struct condition condition_staff;
 extern const struct condition condition_override;
+extern const struct condition condition_stop;
 
 #endif

@@ -122,6 +122,7 @@ static void settle(struct watch *watch)
     conditions_settle(watch);
     phase_settle(watch);
     advice_settle(watch);
+    conditions_follow(watch);
 }
 
 static int64_t next_due_ns(const struct watch *watch)

@@ -4,7 +4,7 @@
 
 static const struct condition *const all[] = {
     &condition_deterrent, &condition_quieting, &condition_soft_start, &condition_start,    &condition_outage,
-    &condition_turn,      &condition_test,     &condition_staff,      &condition_override,
+    &condition_turn,      &condition_test,     &condition_staff,      &condition_override, &condition_stop,
 };
 #define N_CONDITIONS (sizeof all / sizeof all[0])
 
@@ -68,6 +68,13 @@ void conditions_settle(struct watch *watch)
     for (size_t i = 0; i < N_CONDITIONS; i++)
         if (all[i]->settle)
             all[i]->settle(watch);
+}
+
+void conditions_follow(struct watch *watch)
+{
+    for (size_t i = 0; i < N_CONDITIONS; i++)
+        if (all[i]->follow)
+            all[i]->follow(watch);
 }
 
 void conditions_judge_start(struct watch *watch)

@@ -153,6 +153,21 @@ struct staff_state {
     struct shift all[STAFF_MAX];
 };
 
+/* Impulses since something was said; -1: it was not. */
+struct stop_count {
+    int64_t since_ns;
+    uint32_t n_impulses;
+};
+
+/* condition_stop.c: the stop that the crew was told, until the source is silent */
+struct stop_state {
+    char id[FLOW_ID_SIZE]; /* empty: none */
+    char clause[FLOW_TEXT_SIZE];
+    struct stop_count given, passed, acknowledged;
+    int64_t last_ns; /* of the impulses after it; -1 */
+    char impulse_id[FLOW_ID_SIZE];
+};
+
 #define RISE_LEVELS 10
 
 /* condition_soft_start.c: how the present soft start rises */
@@ -204,7 +219,7 @@ struct watch {
     int64_t phase_since_ns;
     struct why phase_why;
     char phase_id[FLOW_ID_SIZE];
-    unsigned phase_on; /* whether it rests on entries, on sound (watch_say.c) */
+    unsigned phase_on;             /* whether it rests on entries, on sound (watch_say.c) */
     char finding_id[FLOW_ID_SIZE]; /* the last one's */
     char released_by[NOTE_NAME_SIZE];
     char release_id[FLOW_ID_SIZE];
@@ -228,6 +243,8 @@ struct watch {
     struct override_state override;
     struct staff_state staff;
     struct rise rise;
+    struct stop_state stop;
+    char unanswered[FLOW_ID_SIZE]; /* the advice that nobody answered and that was found so */
 
     struct advice_key keys[STATION_COUNT];
     uint32_t n_advice; /* newest first */
@@ -305,6 +322,7 @@ void conditions_take_note(struct watch *watch, const struct note *note);
 void conditions_take_impulse(struct watch *watch, const struct event *event);
 void conditions_enter_phase(struct watch *watch, enum phase from, enum phase to);
 void conditions_settle(struct watch *watch);
+void conditions_follow(struct watch *watch);
 /* The source begins to sound: a finding for each that holds it back. */
 void conditions_judge_start(struct watch *watch);
 /* Whether the source may enter that phase only after a pre-watch (condition_test.c). */
