@@ -316,7 +316,7 @@ static void read_field(struct reading *reading, const struct note_field *field, 
     case NOTE_FORM_FLAG:
         *(bool *)member = reading_bool(reading, field->name, false);
         break;
-    case NOTE_FORM_TIME: /* occurred_s */
+    case NOTE_FORM_TIME: /* occurred_s, planned_s */
         break;
     }
 }
@@ -325,6 +325,8 @@ static void read_note(struct reading *reading, struct note *note)
 {
     note->kind = (enum note_kind)read_word(reading, "note", NOTE_KIND_COUNT, note_word);
     note->occurred_ns = read_time(reading, "occurred_s");
+    if (json_object_get(reading->root, "planned_s"))
+        note->planned_ns = read_time(reading, "planned_s");
     note->known_ns = read_time(reading, "known_s");
     const struct note_field *field;
     for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++)

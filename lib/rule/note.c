@@ -21,6 +21,8 @@ static const char *const kind_words[NOTE_KIND_COUNT] = {
     [NOTE_OTHER] = "other source",
     [NOTE_DETERRENT] = "deterrent",
     [NOTE_OVERRIDE] = "safety override",
+    [NOTE_PLAN] = "plan",
+    [NOTE_ANSWER] = "answer to a finding",
     [NOTE_WHOSE] = "whose",
     [NOTE_POSITION] = "position",
     [NOTE_MARK] = "mark",
@@ -67,6 +69,7 @@ static const struct note_field fields[] = {
     {NUMBER(donor_kg, 0, 1000, 3), .allowed = "0 to 1000 kg"},
     {NUMBER(elements, 0, 1000, 0), .allowed = "0 to 1000 elements"},
     {NUMBER(energy_kj, 0, 100000, 1), .allowed = "0 to 100000 kJ"},
+    {TEXT(finding), .allowed = "the id of a finding, at most 63 bytes"},
     {NUMBER(first_point, 0, 10000000, 1), .allowed = "0 to 10000000"},
     {OTHER(group, NOTE_FORM_GROUP),
      .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
@@ -89,6 +92,7 @@ static const struct note_field fields[] = {
     {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
     {OTHER(occurred_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {TEXT(person), .allowed = NAME_ALLOWED},
+    {OTHER(planned_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {WORD(reason, reason_words), .allowed = "life, refusal, instability"},
     {OTHER(refusal, NOTE_FORM_FLAG), .allowed = "true, false"},
     {OTHER(restrike, NOTE_FORM_FLAG), .allowed = "true, false"},
@@ -201,7 +205,7 @@ static enum status set_field(const struct note_field *field, const char *value, 
     case NOTE_FORM_TIME:
         status = read_whole(value, 0, INT64_MAX, &whole);
         if (status == STATUS_OK)
-            note->occurred_ns = whole;
+            *(int64_t *)member = whole;
         return status;
     }
     return STATUS_BUG;
@@ -270,6 +274,10 @@ static const char *missing_of(const struct note *note)
                                  : missing_of_answer(note);
     case NOTE_SOURCE:
         return !*note->source_state ? "source_state" : NULL;
+    case NOTE_PLAN:
+        return note->planned_ns <= 0 ? "planned_ns" : NULL;
+    case NOTE_ANSWER:
+        return !person ? "person" : !*note->finding ? "finding" : !*note->text ? "text" : NULL;
     case NOTE_OVERRIDE:
         return !person                                             ? "person"
                : strcmp(note->answer, "on") == 0 && !*note->reason ? "reason"

@@ -29,6 +29,8 @@ enum note_kind {
     NOTE_DETERRENT, /* answer (on | off): the deterrent works or not */
     NOTE_OVERRIDE,  /* person, answer (on | off), reason (life | refusal | instability), text: the crew works
                        on for safety against a stop */
+    NOTE_PLAN,      /* planned_ns: when the next start is meant to be */
+    NOTE_ANSWER,    /* person, finding (id), text: what there is to say of it */
     NOTE_WHOSE,     /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
                        occurred_ns on; all of it in the job where that is not given */
     NOTE_POSITION,  /* latitude_deg, longitude_deg of the source */
@@ -41,6 +43,7 @@ enum note_kind {
 struct note {
     enum note_kind kind;
     int64_t occurred_ns; /* watch time, as the person says; equal to known_ns when nothing was said */
+    int64_t planned_ns;  /* watch time of a planned start; 0: none */
     int64_t known_ns;    /* watch time, stamped when the watch accepts it */
     char person[NOTE_NAME_SIZE];
     char watch[NOTE_NAME_SIZE];
@@ -51,6 +54,7 @@ struct note {
     char advice[NOTE_NAME_SIZE];
     char job[NOTE_NAME_SIZE];
     char impulse[NOTE_NAME_SIZE];
+    char finding[NOTE_NAME_SIZE];
     char source_state[NOTE_NAME_SIZE];
     char reason[NOTE_NAME_SIZE];
     char text[NOTE_TEXT_SIZE];

@@ -117,6 +117,26 @@ struct watch_advice {
     struct watch_acknowledgement acknowledgements[WATCH_MAX_ACKNOWLEDGEMENTS];
 };
 
+#define PLAN_MAX_STEPS 12
+
+/* Something that must be done, or that happens, before a planned start. */
+struct watch_plan_step {
+    char name[NOTE_NAME_SIZE]; /* "pre-watch begins", "deterrent on", "day ends", "watch of Ann ends" ... */
+    int64_t earliest_ns, latest_ns; /* watch time; -1: none. Of a fact, latest_ns is when it happens */
+    bool fact;                      /* it happens by itself */
+    bool done;                      /* it is done, or under way */
+    bool late;                      /* the planned time cannot be kept for it */
+    char text[FLOW_TEXT_SIZE];
+};
+
+struct watch_plan {
+    int64_t planned_ns;  /* when somebody means to start; -1: nobody does, or the source sounds */
+    int64_t earliest_ns; /* when a start is possible as things stand; -1: nobody can tell */
+    int64_t slips_ns;    /* how much later than planned */
+    uint32_t n_steps;
+    struct watch_plan_step steps[PLAN_MAX_STEPS];
+};
+
 /* A copy of all that people may see; plain data. */
 struct watch_view {
     int64_t watch_ns;
@@ -138,6 +158,7 @@ struct watch_view {
     uint32_t n_advice; /* newest first; the one in force for a station is its first with in_force */
     struct watch_advice advice[WATCH_MAX_ADVICE];
     uint32_t n_impulses; /* ours, of the job */
+    struct watch_plan plan;
 };
 
 void watch_get_view(const struct watch *watch, struct watch_view *out);

@@ -52,6 +52,13 @@ static void need_start(const struct watch *watch, struct wanted *wanted)
     wanted->until_ns = !known ? -1 : clear_ns > ready_ns ? clear_ns : ready_ns;
 }
 
+int64_t advice_earliest_start_ns(const struct watch *watch)
+{
+    struct wanted wanted = {.until_ns = -1};
+    need_start(watch, &wanted);
+    return wanted.until_ns;
+}
+
 static void ground_contact(const struct watch *watch, struct wanted *wanted, const struct contact *contact)
 {
     char text[FLOW_TEXT_SIZE];

@@ -179,6 +179,12 @@ struct rise {
     double first_db[RISE_LEVELS], level_db[RISE_LEVELS]; /* the first; the newest, a ring */
 };
 
+/* watch_plan.c */
+struct plan_state {
+    int64_t planned_ns; /* -1: nothing is planned */
+    char id[FLOW_ID_SIZE];
+};
+
 enum station { STATION_OBSERVER, STATION_CREW, STATION_COUNT };
 
 /* Why an advice is given; with word, contact and confirmed it says whether it is the same advice. */
@@ -244,6 +250,7 @@ struct watch {
     struct staff_state staff;
     struct rise rise;
     struct stop_state stop;
+    struct plan_state plan;
     char unanswered[FLOW_ID_SIZE]; /* the advice that nobody answered and that was found so */
 
     struct advice_key keys[STATION_COUNT];
@@ -382,6 +389,13 @@ void phase_settle(struct watch *watch);
 /* watch_advice.c */
 void advice_settle(struct watch *watch);
 void advice_acknowledge(struct watch *watch, const struct note *note);
+
+/* When a start is possible as things stand; -1: nobody can tell. */
+int64_t advice_earliest_start_ns(const struct watch *watch);
+
+/* watch_plan.c */
+void plan_take(struct watch *watch, const struct note *note);
+void plan_get(const struct watch *watch, struct watch_plan *out);
 
 /* watch_note.c */
 void note_take(struct watch *watch, const struct note *note);

@@ -72,6 +72,20 @@ static void describe(const struct note *note, char out[FLOW_TEXT_SIZE])
     }
 }
 
+/* A finding is answered by words, and stays. Of this run's findings it is known which there are. */
+static void answer_take(struct watch *watch, const struct note *note)
+{
+    unsigned run, stream;
+    unsigned long long counter;
+    int used = 0;
+    bool good = sscanf(note->finding, "%u.%u.finding.%llu%n", &run, &stream, &counter, &used) == 3 &&
+                note->finding[used] == '\0' && run >= 1 && run <= watch->run;
+    if (good && run == watch->run && stream == 0)
+        good = counter >= 1 && counter <= watch->counters[OUTCOME_FINDING];
+    if (!good)
+        note_without_effect(watch, "no finding %.40s is known to be answered", note->finding);
+}
+
 void note_take(struct watch *watch, const struct note *note)
 {
     const char *lacks;
@@ -115,6 +129,12 @@ void note_take(struct watch *watch, const struct note *note)
         break;
     case NOTE_WHOSE:
         whose_note(watch, note);
+        break;
+    case NOTE_PLAN:
+        plan_take(watch, note);
+        break;
+    case NOTE_ANSWER:
+        answer_take(watch, note);
         break;
     case NOTE_POSITION:
         take_position(watch, note);

@@ -109,4 +109,5 @@ void watch_get_view(const struct watch *watch, struct watch_view *out)
     out->n_advice = watch->n_advice;
     memcpy(out->advice, watch->advice, sizeof out->advice);
     out->n_impulses = watch->source.n_impulses;
+    plan_get(watch, &out->plan);
 }

@@ -104,6 +104,7 @@ static void random_note(struct random *random, struct note *note)
     note_reset(note, (enum note_kind)(random_bits(random) % NOTE_KIND_COUNT));
     note->occurred_ns = random_time(random);
     note->known_ns = random_time(random);
+    note->planned_ns = random_bits(random) % 2 ? random_time(random) : 0;
     char *const texts[] = {note->person,  note->watch,  note->station, note->species,
                            note->verdict, note->answer, note->advice,  note->source_state};
     for (size_t i = 0; i < sizeof texts / sizeof texts[0]; i++)
@@ -233,6 +234,7 @@ static void assert_same_note(const struct note *a, const struct note *b)
     SAME(kind);
     SAME(occurred_ns);
     SAME(known_ns);
+    SAME(planned_ns);
     SAME_TEXT(person);
     SAME_TEXT(watch);
     SAME_TEXT(station);
