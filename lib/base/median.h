@@ -4,11 +4,10 @@
 
 #include <stdint.h>
 
+/* Sorts rising; none of them NAN. */
+void median_sort(double *values, uint32_t n);
 /* Sorts values[n], none of them NAN, and gives their median; of an even number the mean of the middle two, of
  * none NAN. */
 double median_of(double *values, uint32_t n);
-
-/* For qsort, of doubles in rising order. */
-int median_compare(const void *a, const void *b);
 
 #endif

@@ -246,10 +246,16 @@ bool contact_leaving_ends(const struct contact *contact, const struct permit *pe
     return clearance && clearance->leaving_ends;
 }
 
+/* When it was last inside a zone, or counted as inside; -1. */
+static int64_t last_inside_ns(const struct contact *contact, uint32_t zone)
+{
+    return contact->stated_ns[zone] > contact->assumed_ns[zone] ? contact->stated_ns[zone]
+                                                                : contact->assumed_ns[zone];
+}
+
 int64_t contact_zone_clear_ns(const struct contact *contact, const struct permit *permit, uint32_t zone)
 {
-    int64_t last = contact->stated_ns[zone] > contact->assumed_ns[zone] ? contact->stated_ns[zone]
-                                                                        : contact->assumed_ns[zone];
+    int64_t last = last_inside_ns(contact, zone);
     return last < 0 ? -1 : last + contact_clearance_ns(contact, permit);
 }
 
@@ -264,9 +270,14 @@ static bool is_inside(const struct contact *contact, const struct permit *permit
 int64_t contact_clears_at_ns(const struct contact *contact, const struct permit *permit, int64_t now_ns)
 {
     int64_t latest = -1;
-    for (uint32_t i = 0; i < permit->n_zones; i++)
-        if (is_inside(contact, permit, i, now_ns) && contact_zone_clear_ns(contact, permit, i) > latest)
-            latest = contact_zone_clear_ns(contact, permit, i);
+    if (contact->grade != GRADE_ACT || contact->state == CONTACT_DISMISSED)
+        return -1;
+    int64_t clearance_ns = contact_clearance_ns(contact, permit);
+    for (uint32_t i = 0; i < permit->n_zones; i++) {
+        int64_t last_ns = last_inside_ns(contact, i);
+        if (last_ns >= 0 && last_ns + clearance_ns > now_ns && last_ns + clearance_ns > latest)
+            latest = last_ns + clearance_ns;
+    }
     return latest;
 }
 

@@ -16,8 +16,12 @@ struct wanted {
 
 static void need(struct wanted *wanted, const char *what)
 {
-    size_t used = strlen(wanted->needs);
-    snprintf(wanted->needs + used, sizeof wanted->needs - used, "%s%.120s", used ? "; " : "", what);
+    size_t used = strlen(wanted->needs), room = sizeof wanted->needs - 1 - used;
+    size_t gap = used == 0 ? 0 : room < 2 ? room : 2, length = strnlen(what, 120);
+    memcpy(wanted->needs + used, "; ", gap);
+    length = length < room - gap ? length : room - gap;
+    memcpy(wanted->needs + used + gap, what, length);
+    wanted->needs[used + gap + length] = '\0';
 }
 
 /* What a start needs from now: the clearance, the pre-watch, the release. */

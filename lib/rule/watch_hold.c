@@ -31,9 +31,10 @@ const struct contact *contact_lead(const struct watch *watch, bool crew)
     const struct contact *lead = NULL;
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[i];
+        if (!contact->asked || !(contact->passed || !crew)) /* most are over: look no closer */
+            continue;
         enum permit_action wanted = contact_wanted(watch, contact);
-        if (contact->asked && (contact->passed || !crew) && wanted >= ACTION_PREPARE &&
-            (!lead || wanted > contact_wanted(watch, lead)))
+        if (wanted >= ACTION_PREPARE && (!lead || wanted > contact_wanted(watch, lead)))
             lead = contact;
     }
     return lead;
@@ -55,8 +56,10 @@ int64_t contact_all_clear_ns(const struct watch *watch)
     int64_t latest = -1;
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[i];
+        if (!contact->holding)
+            continue;
         int64_t clears = contact_clears_at_ns(contact, watch->permit, watch->now_ns);
-        if (contact->holding && clears > latest)
+        if (clears > latest)
             latest = clears;
     }
     return latest;

@@ -61,7 +61,7 @@ static uint32_t folded_intervals(const struct whose_train *train, double out[WHO
     double sorted[WHOSE_KEPT];
     uint32_t n = intervals(train, out);
     memcpy(sorted, out, n * sizeof sorted[0]);
-    qsort(sorted, n, sizeof sorted[0], median_compare);
+    median_sort(sorted, n);
     double one = n ? sorted[n / 3] : NAN;
     for (int parts = 2; n >= 5 && parts <= 3 && out_of_step(out, n, one) > IN_STEP; parts++)
         if (sorted[n / 3] / parts >= SHORTEST_INTERVAL_S &&
