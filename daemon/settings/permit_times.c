@@ -211,6 +211,18 @@ static void read_steady(struct permit_reader *reader, struct group_reader *root)
     group_done(&group);
 }
 
+static void read_job(struct permit_reader *reader, struct group_reader *root)
+{
+    struct permit_job *job = &reader->permit->job;
+    struct group_reader group;
+    job->stated = value_part(root, "job", &group, job->clause);
+    if (!job->stated)
+        return;
+    value_number(reader, &group, "longest_minutes", READER_REQUIRED, 1, LONGEST_MINUTES,
+                 &job->longest_minutes);
+    group_done(&group);
+}
+
 static void read_post_watch(struct permit_reader *reader, struct group_reader *root)
 {
     struct group_reader group;
@@ -232,5 +244,6 @@ void permit_read_times(struct permit_reader *reader, struct group_reader *root)
     read_mitigation_source(reader, root);
     read_test(reader, root);
     read_steady(reader, root);
+    read_job(reader, root);
     read_post_watch(reader, root);
 }

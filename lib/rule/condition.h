@@ -33,5 +33,6 @@ extern const struct condition condition_test;
 extern const struct condition condition_staff;
 extern const struct condition condition_override;
 extern const struct condition condition_stop;
+extern const struct condition condition_job;
 
 #endif

@@ -167,6 +167,13 @@ struct permit_steady {
     char clause[PERMIT_TEXT_SIZE];
 };
 
+/* How long the source may sound in one job, breaks not counted. */
+struct permit_job {
+    bool stated;
+    double longest_minutes;
+    char clause[PERMIT_TEXT_SIZE];
+};
+
 enum dark_start { DARK_START_ALLOWED, DARK_START_ACOUSTIC, DARK_START_NEVER };
 
 /* When a start is allowed at all. What is begun may go on. */
@@ -255,6 +262,7 @@ struct permit {
     struct permit_mitigation_source mitigation_source;
     struct permit_test test;
     struct permit_steady steady;
+    struct permit_job job;
     struct permit_start start;
     struct permit_outage outage;
     struct permit_override override;

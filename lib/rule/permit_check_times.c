@@ -228,6 +228,9 @@ static void check_decisions(struct permit_search *search, const struct permit *p
           permit->p_inside_act <= 1))
         permit_problem(search, "P(inside) of %g to prepare and %g to act; allowed: 0 < prepare <= act <= 1",
                        permit->p_inside_prepare, permit->p_inside_act);
+    permit_look_at(search, "job.longest_minutes");
+    if (permit->job.stated)
+        permit_need_minutes(search, "the sound in one job", permit->job.longest_minutes);
     permit_look_at(search, "post_watch.minutes");
     if (!(permit->post_watch_minutes >= 0 && permit->post_watch_minutes <= PERMIT_LONGEST_MINUTES))
         permit_problem(search, "a watch of %g minutes after the work; allowed: 0 to %g",

@@ -37,6 +37,7 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->turn.last_ns = watch->turn.soft_ns = -1;
     watch->turn.expected_minutes = NAN;
     watch->deterrent.on_ns = watch->deterrent.off_ns = -1;
+    watch->job.since_ns = -1;
     source_reset(&watch->source);
     ranges_reset(&watch->ranges, &setup->ranges);
     surroundings_reset(&watch->surroundings, setup->permit);

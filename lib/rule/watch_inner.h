@@ -97,6 +97,13 @@ struct deterrent {
     char id[FLOW_ID_SIZE];
 };
 
+/* condition_job.c: how long the source has sounded in the job, and since when it does; -1 */
+struct job_state {
+    int64_t sounded_ns, since_ns;
+    bool too_long; /* a finding about it has been made */
+    char name[NOTE_NAME_SIZE];
+};
+
 /* condition_quieting.c */
 struct quieting_state {
     bool on;
@@ -243,6 +250,7 @@ struct watch {
     struct surroundings surroundings;
     struct deterrent deterrent;
     struct quieting_state quieting;
+    struct job_state job;
     struct start_state start;
     struct outage_state outage;
     struct turn_state turn;

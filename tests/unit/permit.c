@@ -82,6 +82,7 @@ static void every_unusable_permit_is_named(void **state)
                 ((struct permit_outage){.stated = true, .diagnose_minutes = 20, .day_minutes = 10}),
             "outage");
     SPOILED(permit.staff.longest_hours = 0, "staff");
+    SPOILED(permit.job.stated = true, "job.longest_minutes");
     SPOILED(permit.staff.day_hours = 4; permit.staff.longest_hours = 6, "more than 4 a day");
     SPOILED(permit.n_breaks = 2; permit.breaks[1] = permit.breaks[0], "break.longer[0]");
     SPOILED(permit.n_pre_watches = 2; permit.pre_watches[1] = permit.pre_watches[0], "pre_watch.deeper[0]");

@@ -280,7 +280,8 @@ static void piling_limits(void **state)
         fclose(file);
     }
     load("germany-2013");
-    assert_true(permit.deterrent.stated); /* JASA 147(2): 685 */
+    assert_true(permit.deterrent.stated);                                /* JASA 147(2): 685 */
+    assert_true(permit.job.stated && permit.job.longest_minutes == 180); /* memory: 180 min a monopile */
     load("denmark-2022");
     assert_true(permit.deterrent.stated); /* tethys, abstract of the guideline */
     load("netherlands");
