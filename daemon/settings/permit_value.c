@@ -55,7 +55,7 @@ static bool start(struct permit_reader *reader, const struct group_reader *group
                       out->value.key);
     if (marked && mark == MARK_TO_BE_FILLED)
         group_problem(&out->group, "mark",
-                      "is \"to be filled\" (%.120s): the settings must state it: "
+                      "is \"to be filled\" (%.250s): the settings must state it: "
                       "permit_values = ( { key = \"%s\"; value; who; source } )",
                       out->value.source, out->value.key);
     return mark != MARK_TO_BE_FILLED;
