@@ -92,6 +92,8 @@ static enum status load(struct recorded *recorded, const char *run_body, const c
     load_settings(recorded, problems);
     if (problems->count == 0)
         status = load_permit(recorded, permit_body, instead, problems);
+    if (problems->count == 0 && status == STATUS_OK)
+        rules_place_zones(recorded->site, recorded->rules, problems);
     return problems->count ? STATUS_BAD_FORMAT : status;
 }
 

@@ -9,8 +9,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* The settings say where the array's edge is. */
-static void place_zones(const struct site *site, struct rules *rules, struct problems *problems)
+void rules_place_zones(const struct site *site, struct rules *rules, struct problems *problems)
 {
     double aperture_m = site->source.shape.aperture_m;
     for (uint32_t i = 0; i < rules->permit.n_zones; i++)
@@ -52,7 +51,7 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
     if (permit == STATUS_OK && files_read(site->permit, &rules->permit_text) != STATUS_OK)
         problems_add(problems, site->permit, 0, "", "cannot be read as text");
     if (permit == STATUS_OK)
-        place_zones(site, rules, problems);
+        rules_place_zones(site, rules, problems);
     if (permit == STATUS_OK && criteria == STATUS_OK)
         check_limits(site, rules, problems);
     enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;

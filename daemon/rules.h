@@ -30,6 +30,8 @@ void rules_destroy(struct rules *rules);
  * its guideline has ended, which values are unverified, and which the site states and who says so. */
 void rules_describe_permit(const struct permit *permit, struct text *out);
 
+/* The settings say where the array's edge is; a zone that begins there without it is a problem. */
+void rules_place_zones(const struct site *site, struct rules *rules, struct problems *problems);
 /* What the watch is set up with; it borrows the rules. */
 void rules_fill_watch(const struct rules *rules, const struct site *site, uint32_t n_streams,
                       const uint32_t *n_channels, struct watch_setup *out);

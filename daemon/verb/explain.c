@@ -202,8 +202,8 @@ static void print_values(const struct permit *permit, const char *part)
     for (uint32_t i = 0; i < permit->n_values; i++) {
         const struct permit_value *value = &permit->values[i];
         if (strncmp(value->key, part, length) == 0 && strchr(".\0", value->key[length]))
-            printf("   %s = %s (%s: %s)\n", value->key, value->text, permit_mark_text(value->mark),
-                   value->source);
+            printf("   %s = %s (%s: %s%s%s)\n", value->key, value->text, permit_mark_text(value->mark),
+                   value->who, *value->who ? ": " : "", value->source);
     }
 }
 

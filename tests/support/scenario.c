@@ -89,6 +89,7 @@ static void take(void *context, const struct outcome *outcome)
 {
     struct player *player = context;
     player->n_outcomes++;
+    again_take(player->again, outcome);
     if (outcome->kind == OUTCOME_EVENT)
         return;
     if (outcome->kind == OUTCOME_CONTACT || outcome->kind == OUTCOME_CORRECTION)
@@ -237,6 +238,7 @@ bool scenario_play(const char *path, const struct permit *permit, bool writes_al
     player->problem_size = problem_size;
     player->run = 1;
     player->sink = (struct outcome_sink){take, player};
+    player->again = again_create();
     player->permit = *permit;
     player->sel_db = NAN;
     player->setup = (struct watch_setup){.permit = &player->permit,
@@ -257,9 +259,15 @@ bool scenario_play(const char *path, const struct permit *permit, bool writes_al
     }
     if (!ended)
         player_complain(player, "has no end");
+    char other[1500];
+    if (!player->failed && player->watch &&
+        !again_same(player->again, &player->setup, player->has_clock, player->zero_unix_ns, other,
+                    sizeof other))
+        player_complain(player, "%s", other);
     *out_outcomes += player->n_outcomes;
     bool good = !player->failed;
     watch_destroy(player->watch);
+    again_destroy(player->again);
     fclose(file);
     free(player);
     return good;

@@ -3,6 +3,7 @@
 #define SUPPORT_SCENARIO_INNER_H
 
 #include "rule/watch.h"
+#include "support/again.h"
 #include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
@@ -18,6 +19,7 @@ struct player {
     size_t problem_size;
     struct watch_setup setup;
     struct watch *watch;
+    struct again *again; /* what came out, to be derived again at the end */
     struct outcome_sink sink;
     uint32_t run;
     uint64_t counters[8];
