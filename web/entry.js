@@ -1,5 +1,5 @@
 // What people enter: one small form a kind of note. Field names are those of POST /api/note.
-import { $, el, post, remember, setText, utc } from "/page.js";
+import { $, el, post, remember, setText, unixOf, utc, watchNow } from "/page.js";
 
 const SOURCE_STATES = ["off", "soft start", "full power", "hold", "reduced", "stopped", "vibro", "drilling", "line turn", "test"];
 let impulses = () => []; // the last ones, newest first
@@ -16,10 +16,16 @@ const KINDS = {
       { name: "leaving", label: "Leaving the zone", type: "checkbox" },
     ],
   },
-  Source: { kind: "source state", fields: () => [select("source_state", "The source is now", SOURCE_STATES)] },
-  Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "Open or close", ["open", "close"])] },
-  Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 })] },
+  Source: { kind: "source state", fields: () => [select("source_state", "The source is now", SOURCE_STATES), number("energy_kj", "Energy, kJ"), number("elements", "Active elements", { step: 1 }), number("minutes", "Expected, min (line turn)")] },
+  Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "It", [{ value: "open", text: "opens" }, { value: "begin", text: "begins (line)" }, { value: "end", text: "ends (line)" }, { value: "close", text: "closes" }]), select("job_kind", "Kind", [{ value: "", text: "" }, "pile", "line", "test", "charge"]), number("energy_kj", "Planned energy, kJ"), number("charge_kg", "Charge, kg")] },
+  Plan: { kind: "plan", fields: () => [{ name: "planned_ns", label: "First impulse at, UTC", type: "time", required: true }] },
+  Weather: { kind: "weather", fields: () => [number("sea_state", "Sea state", { max: 12 }), number("visibility_m", "Visibility, m", { max: 100000 }), number("depth_m", "Depth, m", { max: 12000 })] },
+  Deterrent: { kind: "deterrent", fields: () => [select("answer", "The deterrent is", ["on", "off"])] },
   Quieting: { kind: "quieting", fields: () => [select("answer", "The measure is", ["on", "off"]), { name: "text", label: "Which", maxlength: 100 }] },
+  Safety: {
+    kind: "safety override", person: true,
+    fields: () => [select("answer", "Working on for safety", ["on", "off"]), select("reason", "Because of", ["life", "refusal", "instability"]), { name: "text", label: "What happened", maxlength: 200, wide: true }],
+  },
   "Other source": { kind: "other source", fields: () => [{ name: "text", label: "Which (its name in the settings)", required: true, maxlength: 63 }, select("answer", "It is", ["on", "off"])] },
   Whose: {
     kind: "whose", person: true,
@@ -90,12 +96,20 @@ export function field(spec) {
   return el("label", { class: (wide ? "wide " : "") + (spec.type === "checkbox" ? "tick" : "") }, el("span", { text: label }), input);
 }
 
+/** The next "HH:MM" of UTC, as watch time in nanoseconds. */
+function nextTime(text) {
+  const [hours, minutes] = text.split(":").map(Number), now = unixOf(watchNow());
+  let at = Math.floor(now / 86400) * 86400 + hours * 3600 + minutes * 60;
+  if (at < now) at += 86400;
+  return String(Math.round(at - unixOf(0))) + "000000000";
+}
+
 /** The filled fields of a form, as numbers, flags and texts. */
 export function values(form) {
   const note = {};
   for (const input of form.elements) {
     if (!input.name || (input.type !== "checkbox" && input.value.trim() === "") || (input.type === "checkbox" && !input.checked)) continue;
-    note[input.name] = input.type === "checkbox" ? true : input.type === "number" ? Number(input.value) : input.value.trim();
+    note[input.name] = input.type === "checkbox" ? true : input.type === "time" ? nextTime(input.value) : input.type === "number" ? Number(input.value) : input.value.trim();
   }
   return note;
 }

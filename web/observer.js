@@ -76,6 +76,22 @@ function drawPhase(state) {
   });
 }
 
+/** What the planned start needs, each with its time; what can no longer be kept is said first. */
+function drawPlan(state) {
+  const plan = state.plan, planned = plan.planned_s !== null;
+  $("plan").hidden = !planned;
+  if (!planned) return;
+  setText($("plan_title"), `Plan: start at ${utc(plan.planned_s, false)} UTC, in ${span(plan.planned_s - watchNow())}`);
+  setText($("plan_slips"), plan.slips_s > 0 ? `It slips by ${span(plan.slips_s)}: as things stand the earliest start is ${utc(plan.earliest_s)} UTC.` : plan.earliest_s === null ? "As things stand nobody can tell when a start is possible." : "It can be kept as things stand.");
+  $("plan_slips").classList.toggle("wrong", plan.slips_s > 0 || plan.earliest_s === null);
+  keyed($("plan_steps"), plan.steps, (step) => step.name, () => el("li", {}, el("b"), el("span")), (node, step) => {
+    node.classList.toggle("bad", step.late);
+    const by = step.latest_s === null ? "" : ` ${step.fact ? "at" : "by"} ${utc(step.latest_s, false)} UTC`;
+    setText(node.firstChild, step.name + by);
+    setText(node.lastChild, (step.done ? ", done or under way" : step.late ? ", TOO LATE" : "") + (step.earliest_s === null ? "" : `, not before ${utc(step.earliest_s, false)} UTC`) + (step.text ? ": " + step.text : ""));
+  });
+}
+
 function drawPeople(state) {
   keyed($("people"), state.people, (p) => p.name + "|" + p.watch + "|" + p.station, (p) => {
     const off = el("button", { type: "button", class: "plain", text: "Sign off", "aria-label": "Sign off " + p.name });
@@ -190,6 +206,7 @@ function draw() {
   drawCrew(state);
   drawLadder($("ladder"), site ? site.permit.zones : [], drawContacts(), showContact);
   drawPhase(state);
+  drawPlan(state);
   drawPeople(state);
   drawSource(state);
   drawHearing(state);

@@ -162,7 +162,7 @@ export function connect(draw) {
 export function watchNow() {
   return link.watchS + Math.min(Math.max(performance.now() - link.watchAt, 0), LATE_MS) / 1000;
 }
-function unixOf(watchS) {
+export function unixOf(watchS) {
   return (link.state ? link.state.unix_at_zero_s : 0) + watchS;
 }
 const two = (n) => String(Math.floor(n)).padStart(2, "0");

@@ -259,6 +259,36 @@ static void timers(struct text *text, const struct watch_view *watch)
     text_append(text, "]");
 }
 
+static void step(struct text *text, const struct watch_plan_step *step)
+{
+    text_append(text, "{");
+    json_text(text, "name", step->name);
+    json_time(text, "earliest_s", step->earliest_ns);
+    json_time(text, "latest_s", step->latest_ns);
+    json_flag(text, "fact", step->fact);
+    json_flag(text, "done", step->done);
+    json_flag(text, "late", step->late);
+    json_text(text, "text", step->text);
+    text_append(text, "}");
+}
+
+/* What the planned start needs by when; planned_s is null where nothing is planned. */
+static void plan_object(struct text *text, const struct watch_plan *plan)
+{
+    json_name(text, "plan");
+    text_append(text, "{");
+    json_time(text, "planned_s", plan->planned_ns);
+    json_time(text, "earliest_s", plan->earliest_ns);
+    json_time(text, "slips_s", plan->slips_ns);
+    json_name(text, "steps");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < plan->n_steps; i++) {
+        json_next(text);
+        step(text, &plan->steps[i]);
+    }
+    text_append(text, "]}");
+}
+
 static void people(struct text *text, const struct watch_view *watch)
 {
     json_name(text, "people");
@@ -279,6 +309,7 @@ static void people(struct text *text, const struct watch_view *watch)
 void board_json_watch(struct text *text, const struct watch_view *watch)
 {
     timers(text, watch);
+    plan_object(text, &watch->plan);
     people(text, watch);
     json_number(text, "n_impulses", watch->n_impulses, 0);
     json_name(text, "contacts");

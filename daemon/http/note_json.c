@@ -7,7 +7,8 @@
 
 #define KINDS_ALLOWED                                                                                        \
     "sign-on, sign-off, sighting, distance, verdict, release, acknowledgement, source state, job, weather, " \
-    "quieting, other source, whose, position, mark, remark"
+    "quieting, deterrent, safety override, plan, answer to a finding, other source, whose, position, mark, " \
+    "remark"
 
 __attribute__((format(printf, 4, 5))) static enum status
 refuse(struct note_refusal *refusal, const char *field, const char *allowed, const char *format, ...)
