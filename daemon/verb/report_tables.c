@@ -129,13 +129,16 @@ static const char field_checks_sql[] =
     " FROM calibration WHERE what = 'field check' ORDER BY seq";
 
 static const char permit_sql[] =
-    "SELECT permit, title, document, year, CASE WHEN demonstration THEN 'NO: a demonstration' ELSE 'yes' END,"
-    " substr(sha256, 1, 32) || ' ' || substr(sha256, 33) FROM permit GROUP BY sha256 ORDER BY min(seq)";
+    "SELECT min(run), permit, title, document, year,"
+    " CASE WHEN demonstration THEN 'NO: a demonstration' ELSE 'yes' END,"
+    " substr(sha256, 1, 32) || ' ' || substr(sha256, 33)"
+    " FROM permit GROUP BY sha256, \"values\" ORDER BY min(seq)";
 
 static const char values_sql[] =
-    "SELECT json_extract(v.value, '$.key'), json_extract(v.value, '$.value'), json_extract(v.value, '$.mark'),"
-    " json_extract(v.value, '$.source')"
-    " FROM (SELECT \"values\", min(seq) AS first FROM permit GROUP BY sha256) AS p, json_each(p.\"values\") AS v"
+    "SELECT p.run, json_extract(v.value, '$.key'), json_extract(v.value, '$.value'),"
+    " json_extract(v.value, '$.mark'), json_extract(v.value, '$.source')"
+    " FROM (SELECT \"values\", min(seq) AS first, min(run) AS run FROM permit GROUP BY sha256, \"values\") AS p,"
+    " json_each(p.\"values\") AS v"
     " WHERE json_extract(v.value, '$.mark') <> 'read' ORDER BY p.first, v.key";
 
 /* clang-format on */
@@ -216,13 +219,14 @@ const struct sheet_table report_tables[] = {
                "#difference dB", "#change since the last", "#seconds"},
      .sql = field_checks_sql},
     {.title = "Permit",
+     .remark = "One that changed in mid-survey stands here too, and holds from the run on that is named.",
      .empty = "The ledger holds no permit.",
-     .heads = {"permit", "title", "document", "#year", "for work", "SHA-256 of its text"},
+     .heads = {"#from run", "permit", "title", "document", "#year", "for work", "SHA-256 of its text"},
      .sql = permit_sql},
     {.title = "Values of the permit that nobody has checked against the document",
      .remark = "They are to be checked before the permit is relied on.",
      .empty = "None: every value is marked as read in the document.",
-     .heads = {"value", "is", "known from", "source"},
+     .heads = {"#from run", "value", "is", "known from", "source"},
      .sql = values_sql},
     {0},
 };

@@ -175,9 +175,10 @@ static void tell_permit(struct story *story)
     snprintf(permit->document, sizeof permit->document, "none");
     permit->year = 2026;
     permit->demonstration = true;
-    static const struct permit_value values[] = {{"pre_watch.minutes", "1.0", "for the test", MARK_INVENTED},
-                                                 {"zones[0].radius_m", "500", "page 3", MARK_READ},
-                                                 {"break.minutes", "10", "from memory", MARK_MEMORY_HIGH}};
+    static const struct permit_value values[] = {
+        {"pre_watch.minutes", "1.0", "for the test", "", MARK_INVENTED},
+        {"zones[0].radius_m", "500", "page 3", "", MARK_READ},
+        {"break.minutes", "10", "from memory", "", MARK_MEMORY_HIGH}};
     permit->n_values = 3;
     memcpy(permit->values, values, sizeof values);
     assert_int_equal(entry_body_permit(1, 1, permit, "id = \"demonstration\";\n", &story->body), STATUS_OK);

@@ -46,6 +46,51 @@ static void good_settings_are_read(void **state)
     problems_destroy(&problems);
 }
 
+/* What a `run` entry keeps is what a rerun reads: the same settings again, numbers to the last bit. */
+static void effective_settings_are_read_back(void **state)
+{
+    (void)state;
+    struct problems problems = {0};
+    static struct site site, again;
+    write_file("name = \"back\"; ledger = \"b.ledger\"; permit = \"p\"; calls = \"c\"; silence_s = "
+               "33.3333333333333357;\n"
+               "contact = { gap_s = 250; evidence_decay_s = 0x100; look_evidence = 0.1; };\n"
+               "permit_values = ( { key = \"a.b\"; value = \"inside\"; who = \"A. \\\"B\\\" C\"; source = "
+               "\"x = y  # default\"; },\n"
+               "                  { key = \"c\"; value = [\"porpoise\", \"phocid\"]; who = \"d\"; source = "
+               "\"e\"; },\n"
+               "                  { key = \"f\"; value = 0.1; who = \"d\"; source = \"e\"; } );\n"
+               "source = { latitude_deg = 54.012345678901234; longitude_deg = -6.1; aperture_m = 16.2; };\n"
+               "streams = ( { input = \"pcm\"; path = \"-\"; rate_hz = 96000; channel_count = 2;\n"
+               "              channels = ( { place_m = [0.1, 0.2, 0.30000000000000004]; }, { role = "
+               "\"measure\"; } ); },\n"
+               "            { input = \"recording\"; files = (\"a.wav\", \"b c.wav\"); latitude_deg = 1.0; "
+               "longitude_deg = 2.0; } );\n");
+    enum status status = site_load(path, &problems, &site);
+    if (status != STATUS_OK)
+        fail_msg("%s", problems.lines.data);
+    status = site_load_effective("again", site.effective.data, site.effective.length, &problems, &again);
+    if (status != STATUS_OK)
+        fail_msg("%s", problems.lines.data);
+    assert_string_equal(site.effective.data, again.effective.data);
+    assert_true(!(site.silence_s < again.silence_s) && !(site.silence_s > again.silence_s));
+    assert_memory_equal(site.streams[0].channels, again.streams[0].channels, sizeof site.streams[0].channels);
+    assert_memory_equal(&site.source.place, &again.source.place, sizeof site.source.place);
+    assert_int_equal(again.permit_fills.n, 3);
+    for (uint32_t i = 0; i < 3; i++) {
+        assert_string_equal(site.permit_fills.fills[i].text, again.permit_fills.fills[i].text);
+        assert_string_equal(site.permit_fills.fills[i].who, again.permit_fills.fills[i].who);
+        assert_string_equal(site.permit_fills.fills[i].source, again.permit_fills.fills[i].source);
+    }
+    assert_int_equal(again.n_streams, 2);
+    site_destroy(&again);
+    status = site_load_effective("again", "name\n", 5, &problems, &again);
+    assert_int_equal(status, STATUS_BAD_FORMAT);
+    site_destroy(&again);
+    site_destroy(&site);
+    problems_destroy(&problems);
+}
+
 static void all_errors_of_meaning_come_at_once(void **state)
 {
     (void)state;
@@ -198,6 +243,7 @@ int main(void)
     if (mkstemp(path) < 0)
         return 1;
     const struct CMUnitTest tests[] = {
+        cmocka_unit_test(effective_settings_are_read_back),
         cmocka_unit_test(good_settings_are_read),
         cmocka_unit_test(all_errors_of_meaning_come_at_once),
         cmocka_unit_test(other_sources_are_read),
