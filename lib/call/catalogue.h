@@ -53,6 +53,14 @@ struct train_shape {
     double tail_s; /* and within this, what is 10 dB weaker */
 };
 
+/* What units of song must be like to say all of their class's evidence (listen/song.h). */
+struct song_shape {
+    uint32_t min_units; /* 0: the class states none */
+    uint32_t min_kinds;
+    double within_s, min_unit_s;
+    double lone_evidence, lone_s, repeat_evidence; /* of units that are no song */
+};
+
 /* How a sound that is no animal's is recognised; call/others.h says each in full. */
 enum manner {
     MANNER_NONE,    /* as a tone or a train: an animal's */
@@ -92,6 +100,7 @@ struct call_class {
     double certainty;       /* 0..1 */
     double evidence;        /* log-odds that one call adds to a contact of the group */
     char source[CATALOGUE_TEXT_SIZE]; /* where the figures come from, with their marks */
+    struct song_shape song;           /* of a tone that is a unit of song */
     struct tone_shape tone;           /* of a tone */
     struct train_shape train;         /* of a train */
     struct other_shape sound;         /* of what is no animal's: instead of both */

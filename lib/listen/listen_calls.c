@@ -100,11 +100,12 @@ static void take_joined(void *context, const struct joined_call *joined)
 {
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
-    bool animal = listen->setup.catalogue->classes[found->class_index].animal;
+    const struct catalogue *catalogue = listen->setup.catalogue;
+    bool animal = catalogue->classes[found->class_index].animal;
     if (animal && is_hidden(listen, found))
         return;
     double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
-    if (animal && evidence <= 0 && listen->setup.catalogue->classes[found->class_index].evidence > 0) {
+    if (animal && evidence <= 0 && catalogue->classes[found->class_index].evidence > 0) {
         listen->n_covered[found->class_index]++;
         return;
     }
@@ -114,7 +115,8 @@ static void take_joined(void *context, const struct joined_call *joined)
         return;
     }
     struct event *event = add_call(listen, joined);
-    event->as.call.evidence = evidence;
+    event->as.call.evidence =
+        fmin(evidence, song_evidence(&listen->song, &catalogue->classes[found->class_index], found));
     covers_keep_call(&listen->covers, found, event->counter);
 }
 
@@ -147,6 +149,7 @@ enum status listen_create_calls(struct listen *listen)
             listen->second_channel = i;
     for (uint32_t c = 0; c < catalogue->n_classes; c++)
         any = any || catalogue->classes[c].sound.manner != MANNER_NONE;
+    song_reset(&listen->song, setup->rate_hz);
     covers_reset(&listen->covers, catalogue->classes, catalogue->n_classes, setup->rate_hz);
     alone_reset(&listen->alone, catalogue->classes, catalogue->n_classes, setup->rate_hz);
     if (listen->strip_channel == 0 || !any)

@@ -5,6 +5,7 @@
  * usage: calls_bench OUT_FOLDER [PIECE] [SEED] [SCALE] [BUDGET_S]
  *   PIECE     pulses, trains, tones, seas, confounders, costs; "all" those without a result; "pool" goes on
  *             with confounders, 20 min of each in turn, until BUDGET_S have passed or 10 days are pooled
+ *             the name of a confounder runs that for SCALE hours and prints what came of it
  *   SEED      0: the number of the day
  *   SCALE     of the lengths and numbers of trials: 1; more checks the single pulses' noise law too */
 #include "bench/calls/calls.h"
@@ -182,6 +183,14 @@ static bool has_result(const struct bench *bench, const char *piece)
     return has;
 }
 
+/* A confounder by itself: printed, and not kept. */
+static bool show(json_t *row)
+{
+    bool good = row && json_dumpf(row, stdout, JSON_INDENT(1)) == 0 && puts("") >= 0;
+    json_decref(row);
+    return good;
+}
+
 static bool run(const struct bench *bench, const char *name)
 {
     bool all = strcmp(name, "all") == 0, good = true, known = all;
@@ -194,6 +203,9 @@ static bool run(const struct bench *bench, const char *name)
         if (named || (all && !has_result(bench, pieces[i].name)))
             good = finish(bench, pieces[i].name, start_s, pieces[i].run(&bench->setup)) && good;
     }
+    for (uint32_t i = 0; !known && i < calls_confounders_count(); i++)
+        if (strcmp(name, calls_confounder_name(i)) == 0)
+            return show(calls_confounder(&bench->setup, i, bench->setup.scale));
     if (!known)
         fprintf(stderr, "no piece %s\n", name);
     return good && known;
