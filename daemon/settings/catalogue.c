@@ -12,10 +12,10 @@
 static const char *const forms[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train", [CALL_NOISE] = "noise"};
 
 static const char *const manners[MANNER_COUNT] = {
-    [MANNER_NONE] = "",         [MANNER_BURST] = "burst",     [MANNER_HOPS] = "hops",
-    [MANNER_LINE] = "line",     [MANNER_PICK_UP] = "pick-up", [MANNER_FLOW] = "flow",
-    [MANNER_BEATS] = "beats",   [MANNER_HUMP] = "hump",       [MANNER_SNAPS] = "snaps",
-    [MANNER_RHYTHM] = "rhythm", [MANNER_IMPULSE] = "impulse",
+    [MANNER_NONE] = "",       [MANNER_BURST] = "burst",     [MANNER_HOPS] = "hops",
+    [MANNER_LINE] = "line",   [MANNER_PICK_UP] = "pick-up", [MANNER_FLOW] = "flow",
+    [MANNER_BEATS] = "beats", [MANNER_HUMP] = "hump",       [MANNER_GRUNTS] = "grunts",
+    [MANNER_SNAPS] = "snaps", [MANNER_RHYTHM] = "rhythm",   [MANNER_IMPULSE] = "impulse",
 };
 
 /* low < high, at the higher one's key. */

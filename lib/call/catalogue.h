@@ -71,6 +71,7 @@ enum manner {
     MANNER_FLOW,    /* steep low noise that each hydrophone has for itself */
     MANNER_BEATS,   /* noise that swells regularly */
     MANNER_HUMP,    /* steady noise that is louder in its band than below it */
+    MANNER_GRUNTS,  /* short rows of pulses that come again alike */
     MANNER_SNAPS,   /* many sharp pulses in no rhythm */
     MANNER_RHYTHM,  /* pulses whose rhythm is too steady for an animal (call/trains.h) */
     MANNER_IMPULSE, /* an impulse that stands alone (level/impulses.h) */
@@ -85,7 +86,7 @@ struct other_shape {
     double max_extent_hz; /* how far a burst may sweep, in a straight line */
     uint32_t min_repeats; /* bursts alike ... */
     double memory_s;      /* ... within so long; an impulse stands alone for so long; chips in a block */
-    double low_rate_hz, high_rate_hz; /* swells or snaps a second */
+    double low_rate_hz, high_rate_hz; /* swells, snaps or pulses a second */
     uint32_t min_harmonics;           /* of a line */
 };
 

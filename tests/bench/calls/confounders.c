@@ -129,7 +129,7 @@ static const struct confounder {
                    {"mains pick-up", 8000, "electrical pick-up", NULL, 0, 0, 2},
                    {"supply pick-up", 384000, "electrical pick-up", NULL, 0, 0, 2},
                    {"fish hum", 8000, "fish hum", NULL, 3, 100, 0},
-                   {"fish grunts", 48000, NULL, NULL, 3, 100, 0},
+                   {"fish grunts", 48000, "fish grunt", NULL, 3, 100, 0},
                    {"fish knocks", 48000, NULL, NULL, 3, 100, 0},
                    {"ice cracks", 48000, NULL, NULL, 200, 5000, 0},
                    {"ice squeals", 16000, NULL, NULL, 200, 5000, 0}};
