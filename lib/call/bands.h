@@ -1,7 +1,7 @@
 /* A bank of band-pass filters of one channel and the short-time power behind each: the front end that all
  * pulse classes share. Butterworth band-passes of order 3 (bilinear transform with prewarped edges, Oppenheim
- * and Schafer, "Discrete-Time Signal Processing", section 7.2), four of them side by side in one vector, so
- * that four bands cost what one would. Power is summed over *slots* of a few frames; a pulse detector adds
+ * and Schafer, "Discrete-Time Signal Processing", section 7.2), eight of them side by side in one vector (dsp/lanes.h), so
+ * that eight bands cost what one would. Power is summed over *slots* of a few frames; a pulse detector adds
  * slots up to its own window. */
 #ifndef CALL_BANDS_H
 #define CALL_BANDS_H
