@@ -33,10 +33,12 @@ struct group {
 struct bands {
     double rate_hz;
     uint32_t n, n_groups, slot_frames, block_slots, history_slots;
+    bool has_room;                    /* the next block has its place already */
     uint32_t stride, at;              /* of the rows of power, and where in them the last block begins */
     struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
     struct band_edges edges[BANDS_MAX];
     double delay[BANDS_MAX];
+    float block_sums[BANDS_MAX];
     struct group groups[BANDS_MAX / WIDE_LANES];
     float *power;               /* [n][stride] */
     float *samples;             /* [stride * slot_frames] */
@@ -226,9 +228,9 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->n_groups = (n + WIDE_LANES - 1) / WIDE_LANES;
     bands->slot_frames = slot_frames;
     bands->block_slots = block_slots;
-    bands->history_slots = bands->at = history_slots;
+    bands->history_slots = bands->at = history_slots + block_slots; /* of the block that is being filled */
     uint32_t spare = SPARE_HISTORIES * history_slots / block_slots + SPARE_BLOCKS;
-    bands->stride = history_slots + spare * block_slots;
+    bands->stride = bands->history_slots + spare * block_slots;
     bands->power = calloc((size_t)n * bands->stride, sizeof(float));
     bands->samples = calloc((size_t)bands->stride * slot_frames, sizeof(float));
     bands->slots = calloc(block_slots, sizeof *bands->slots);
@@ -260,6 +262,7 @@ void bands_reset(struct bands *bands)
     }
     memset(bands->power, 0, sizeof(float) * bands->n * bands->stride);
     memset(bands->samples, 0, sizeof(float) * bands->stride * bands->slot_frames);
+    memset(bands->block_sums, 0, sizeof bands->block_sums);
 }
 
 /* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
@@ -267,10 +270,11 @@ void bands_reset(struct bands *bands)
 #define SECTION(difference, s) (((difference)-g.a2[s] * g.y2[s]) - g.a1[s] * g.y1[s])
 
 LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_t n_slots,
-                                    uint32_t slot_frames, float out[][WIDE_LANES])
+                                    uint32_t slot_frames, float out[][WIDE_LANES], float *out_sums)
 {
     struct group g = *group;
     const float scale = 1.0F / (float)slot_frames;
+    wide_lanes block = {0};
     for (uint32_t slot = 0; slot < n_slots; slot++) {
         wide_lanes sum = {0};
         for (uint32_t k = 0; k < slot_frames; k++, x++) {
@@ -289,7 +293,9 @@ LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_
         }
         sum *= scale;
         memcpy(out[slot], &sum, sizeof sum);
+        block += sum;
     }
+    memcpy(out_sums, &block, sizeof block);
     *group = g;
 }
 
@@ -309,33 +315,85 @@ static void next_place(struct bands *bands)
     bands->at = bands->history_slots;
 }
 
-void bands_push(struct bands *bands, const float *samples)
+float *bands_get_room(struct bands *bands)
+{
+    if (!bands->has_room)
+        next_place(bands);
+    bands->has_room = true;
+    return bands->samples + (size_t)bands->at * bands->slot_frames;
+}
+
+/* Rows of four lanes become columns of four slots. */
+static inline void turn(const float (*slots)[WIDE_LANES], float *out, size_t stride, uint32_t n_lanes)
+{
+    const lanes a = lanes_load(slots[0]), b = lanes_load(slots[1]), c = lanes_load(slots[2]),
+                d = lanes_load(slots[3]);
+    const lanes ab = __builtin_shufflevector(a, b, 0, 4, 1, 5),
+                cd = __builtin_shufflevector(c, d, 0, 4, 1, 5);
+    const lanes ef = __builtin_shufflevector(a, b, 2, 6, 3, 7),
+                gh = __builtin_shufflevector(c, d, 2, 6, 3, 7);
+    const lanes turned[LANES] = {
+        __builtin_shufflevector(ab, cd, 0, 1, 4, 5), __builtin_shufflevector(ab, cd, 2, 3, 6, 7),
+        __builtin_shufflevector(ef, gh, 0, 1, 4, 5), __builtin_shufflevector(ef, gh, 2, 3, 6, 7)};
+    for (uint32_t l = 0; l < n_lanes; l++)
+        lanes_store(out + l * stride, turned[l]);
+}
+
+/* The slots of a group to the rows of its bands; gives whether all are finite at the end. */
+static bool store_group(struct bands *bands, uint32_t g)
 {
     bool finite = true;
-    next_place(bands);
-    memcpy(bands->samples + (size_t)bands->at * bands->slot_frames, samples,
-           (size_t)bands->block_slots * bands->slot_frames * sizeof *samples);
+    for (uint32_t b = g * WIDE_LANES; b < bands->n && b < (g + 1) * WIDE_LANES; b += LANES) {
+        float *block = bands->power + (size_t)b * bands->stride + bands->at;
+        const uint32_t n_lanes = bands->n - b < LANES ? bands->n - b : LANES, lane = b % WIDE_LANES;
+        for (uint32_t slot = 0; slot < bands->block_slots; slot += LANES)
+            turn((const float(*)[WIDE_LANES]) & bands->slots[slot][lane], block + slot, bands->stride,
+                 n_lanes);
+        for (uint32_t l = 0; l < n_lanes; l++)
+            finite = finite && isfinite(block[l * bands->stride + bands->block_slots - 1]);
+    }
+    return finite;
+}
+
+void bands_push_room(struct bands *bands)
+{
+    const float *samples = bands_get_room(bands);
+    bool finite = true;
+    bands->has_room = false;
     for (uint32_t g = 0; g < bands->n_groups; g++) {
-        filter_group(&bands->groups[g], samples, bands->block_slots, bands->slot_frames, bands->slots);
-        for (uint32_t b = g * WIDE_LANES; b < bands->n && b < (g + 1) * WIDE_LANES; b++) {
-            float *block = bands->power + (size_t)b * bands->stride + bands->at;
-            for (uint32_t slot = 0; slot < bands->block_slots; slot++)
-                block[slot] = bands->slots[slot][b - g * WIDE_LANES];
-            finite = finite && isfinite(block[bands->block_slots - 1]);
-        }
+        filter_group(&bands->groups[g], samples, bands->block_slots, bands->slot_frames, bands->slots,
+                     bands->block_sums + (size_t)g * WIDE_LANES);
+        finite = store_group(bands, g) && finite;
     }
     if (!finite)
         bands_reset(bands);
 }
 
+void bands_push(struct bands *bands, const float *samples)
+{
+    memcpy(bands_get_room(bands), samples, (size_t)bands->block_slots * bands->slot_frames * sizeof *samples);
+    bands_push_room(bands);
+}
+
+/* Where in the rows the last block begins. */
+static uint32_t last_block(const struct bands *bands)
+{
+    return bands->has_room ? bands->at - bands->block_slots : bands->at;
+}
+
 const float *bands_get_power(const struct bands *bands, uint32_t b)
 {
-    return bands->power + (size_t)b * bands->stride + bands->at;
+    return bands->power + (size_t)b * bands->stride + last_block(bands);
+}
+
+double bands_get_block_sum(const struct bands *bands, uint32_t b)
+{
+    return bands->block_sums[b];
 }
 
 const float *bands_get_samples(const struct bands *bands)
 {
-    return bands->samples + (size_t)bands->at * bands->slot_frames;
+    return bands->samples + (size_t)last_block(bands) * bands->slot_frames;
 }
 
 double bands_get_delay(const struct bands *bands, uint32_t b)

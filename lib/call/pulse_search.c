@@ -2,8 +2,8 @@
 #include "call/pulse_search.h"
 #include "base/units.h"
 #include "call/noise_rate.h"
+#include "call/sliding.h"
 #include "call/trigger_sizes.h"
-#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 
@@ -11,6 +11,7 @@
 #define RISE 4.0             /* a new pulse in the tail of another must rise by this ratio (6 dB) */
 #define FROZEN_LENGTHS 8     /* a background stands still for so many longest pulses, then goes on */
 #define GUARD_DEVIATIONS 2.5 /* benefit of the doubt for a guard band of which noise is all we see */
+#define SLOPE_BLOCKS 8       /* the noise's slope is looked at once in so many blocks */
 #define RUN 40               /* windows in a row on one side of the median that say it is out of date */
 enum search_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 
@@ -18,6 +19,7 @@ enum search_state { SETTLING, IDLE, OPEN, WAITING, TAIL };
 struct guard {
     struct band_parts parts;
     uint32_t window, after; /* slots in all, and after the peak */
+    uint32_t every; /* learned with so many of the band's windows: as often as its own do not overlap */
     double ratio;
     struct window_median median;
     float settle[WINDOW_MEDIAN_SETTLE];
@@ -36,8 +38,9 @@ struct pulse_search {
     struct whitened *whitened;
     double delay_frames; /* of the bank: by which its power is late */
     struct window_median band;
-    double slope_db; /* of the noise, a decade */
-    uint32_t n_settled, frozen_slots;
+    double slope_db;       /* of the noise, a decade */
+    uint32_t slope_blocks; /* since the background was learned anew */
+    uint32_t n_settled, frozen_slots, n_learned;
     uint32_t run; /* windows since one lay on the other side of the median */
     bool run_above;
     uint64_t n_slots; /* before the block at hand */
@@ -94,7 +97,8 @@ static enum status fill_guard(struct pulse_search *search, uint32_t g, double st
     guard->after = guard->window > search->window ? (guard->window - search->window + 1) / 2 : 0;
     struct window_statistics statistics = {.freedom = 1, .skewness = 1};
     enum status status = bands_get_statistics(setup->bands, &guard->parts, guard->window, 0, &statistics);
-    guard->median = window_median_of(&statistics, step);
+    guard->every = guard->window > search->window ? guard->window / search->window : 1;
+    guard->median = window_median_of(&statistics, step * sqrt(guard->every)); /* as precise, a root slower */
     if (guard->window > search->guard_window)
         search->guard_window = guard->window;
     if (guard->after > search->guard_after)
@@ -165,12 +169,13 @@ enum status pulse_search_create(const struct search_setup *setup, struct pulse_s
 void pulse_search_reset(struct pulse_search *search)
 {
     search->state = SETTLING;
-    search->n_settled = search->frozen_slots = search->run = search->n_found = 0;
+    search->n_settled = search->frozen_slots = search->run = search->n_found = search->n_learned = 0;
     search->n_slots = 0;
     search->energy = 0;
     whitened_reset(search->whitened);
     window_median_reset(&search->band);
     search->slope_db = 0;
+    search->slope_blocks = 0;
     for (uint32_t g = 0; g < SEARCH_GUARDS; g++)
         window_median_reset(&search->guards[g].median);
 }
@@ -198,31 +203,6 @@ static bool settle_on(struct pulse_search *search, int64_t slot)
     return ++search->n_settled == WINDOW_MEDIAN_SETTLE;
 }
 
-/* Window means of the block, and the greatest of them. */
-static float sum_windows(struct pulse_search *search)
-{
-    const float *band = whitened_get_power(search->whitened);
-    const uint32_t n = search->setup.block_slots, window = search->window;
-    const float scale = 1.0F / (float)window;
-    lanes greatest = {0};
-    for (uint32_t i = 0; i < n; i += 2 * LANES) {
-        lanes first = lanes_load(band + i), second = lanes_load(band + i + LANES);
-        const float *late = band + i;
-        for (uint32_t k = 1; k < window; k++) {
-            late--;
-            first += lanes_load(late);
-            second += lanes_load(late + LANES);
-        }
-        first *= scale;
-        second *= scale;
-        greatest = lanes_greatest(lanes_greatest(first, second), greatest);
-        lanes_store(search->sums + i, first);
-        lanes_store(search->sums + i + LANES, second);
-    }
-    greatest = lanes_greatest(greatest, __builtin_shufflevector(greatest, greatest, 2, 3, 0, 1));
-    return greatest[0] > greatest[1] ? greatest[0] : greatest[1];
-}
-
 /* Once a window: every window counts once in the background. */
 static void learn(struct pulse_search *search, int64_t slot)
 {
@@ -232,11 +212,13 @@ static void learn(struct pulse_search *search, int64_t slot)
             return;
         whitened_settle(search->whitened, windows);
         window_median_settle(&search->band, windows);
-        sum_windows(search);
+        sliding_means(whitened_get_power(search->whitened), search->setup.block_slots, search->window,
+                      search->sums);
         for (uint32_t g = 0; g < SEARCH_GUARDS; g++)
             if (search->guards[g].parts.n)
                 window_median_settle(&search->guards[g].median, search->guards[g].settle);
         search->state = IDLE;
+        search->slope_blocks = 0;
         return;
     }
     if (search->state != IDLE && search->frozen_slots < FROZEN_LENGTHS * search->max_open)
@@ -245,9 +227,10 @@ static void learn(struct pulse_search *search, int64_t slot)
     whitened_follow(search->whitened, slot);
     for (uint32_t g = 0; g < SEARCH_GUARDS; g++) {
         struct guard *guard = &search->guards[g];
-        if (guard->parts.n)
+        if (guard->parts.n && search->n_learned % guard->every == 0)
             window_median_follow(&guard->median, guard_power(search, guard, slot));
     }
+    search->n_learned++;
     search->run = search->run * (above == search->run_above) + 1;
     search->run_above = above;
     if (search->run >= RUN) {
@@ -378,26 +361,26 @@ void pulse_search_push(struct pulse_search *search)
 {
     const struct search_setup *setup = &search->setup;
     whitened_push(search->whitened);
-    if (search->state != SETTLING)
+    if (search->state != SETTLING && search->slope_blocks++ % SLOPE_BLOCKS == 0)
         find_slope(search);
     const float *band = whitened_get_power(search->whitened);
-    int64_t n = setup->block_slots;
+    const int64_t n = setup->block_slots, window = search->window;
     search->n_found = 0;
-    float greatest = sum_windows(search);
+    int64_t next = (window - (int64_t)(search->n_slots % search->window)) % window;
+    const float greatest = sliding_means(band, setup->block_slots, search->window, search->sums);
     /* Until the background has moved by as much as it can in a block, no window can pass. */
-    bool quiet = search->state == IDLE && greatest < 0.8 * search->threshold * search->band.mean_pa2;
-    int64_t next = (int64_t)((search->window - search->n_slots % search->window) % search->window);
-    for (int64_t slot = quiet ? next : 0; slot < n; slot += quiet ? search->window : 1) {
+    const bool quiet = search->state == IDLE && greatest < 0.8 * search->threshold * search->band.mean_pa2;
+    for (int64_t slot = quiet ? next : 0; slot < n; slot += quiet ? window : 1) {
         if (!quiet && search->state != SETTLING) {
             step(search, slot, band);
             search->frozen_slots += search->state != IDLE;
         }
         if (slot == next) {
             learn(search, slot);
-            next += search->window;
+            next += window;
         }
     }
-    search->energy = energy_until(search, n);
+    search->energy += whitened_block_sum(search->whitened) * setup->slot_frames * setup->frames_per_frame;
     search->n_slots += setup->block_slots;
     search->start -= n;
     search->peak -= n;

@@ -156,10 +156,10 @@ static void take_pulse(void *context, const struct pulse *pulse)
         tied_push(&hearing->ear->tied, pulse, &sink, hearing->ear->rejections);
 }
 
-void pulses_search(struct pulses *pulses, uint32_t index, const float *block)
+void pulses_search(struct pulses *pulses, uint32_t index)
 {
     struct stage *stage = &pulses->stages[index];
-    bands_push(stage->bands, block);
+    bands_push_room(stage->bands);
     stage->n_blocks++;
     pulses->known_frame =
         pulses->first_frame + stage->n_blocks * stage->block_frames * stage->factor - (stage->factor == 1);

@@ -26,7 +26,6 @@ struct stage {
     struct bands *bands;
     struct band_edges edges[BANDS_MAX];
     uint32_t n_edges;
-    float *block; /* [block_frames] */
     uint32_t filled;
     uint64_t n_blocks; /* since the last reset */
 };
@@ -66,7 +65,7 @@ void stages_reset(struct pulses *pulses);
 void stages_push(struct pulses *pulses, const float *pascals, uint32_t n);
 void stages_destroy(struct pulses *pulses);
 
-/* pulses.c: the stage's ears hear a block of [block_frames] samples. */
-void pulses_search(struct pulses *pulses, uint32_t stage, const float *block);
+/* pulses.c: the stage's ears hear the block that its bands have room for. */
+void pulses_search(struct pulses *pulses, uint32_t stage);
 
 #endif

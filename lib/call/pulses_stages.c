@@ -167,9 +167,6 @@ static enum status create_stage(struct pulses *pulses, uint32_t index)
         uint32_t slots = trigger_get_history(pulses->ears[e].call_class, stage->rate_hz, stage->slot_frames);
         stage->history_slots = slots > stage->history_slots ? slots : stage->history_slots;
     }
-    stage->block = calloc(stage->block_frames, sizeof *stage->block);
-    if (!stage->block)
-        return STATUS_NO_MEMORY;
     enum status status = bands_create(stage->rate_hz, stage->edges, stage->n_edges, stage->slot_frames,
                                       stage->block_slots, stage->history_slots, &stage->bands);
     if (status != STATUS_OK || stage->factor == 1)
@@ -205,20 +202,14 @@ static void fill(struct pulses *pulses, uint32_t index, const float *samples, si
 {
     struct stage *stage = &pulses->stages[index];
     while (n > 0) {
-        if (stage->filled == 0 && n >= stage->block_frames) { /* nothing to wait for, nothing to copy */
-            pulses_search(pulses, index, samples);
-            samples += stage->block_frames;
-            n -= stage->block_frames;
-            continue;
-        }
         size_t room = stage->block_frames - stage->filled, part = n < room ? n : room;
-        memcpy(stage->block + stage->filled, samples, part * sizeof *samples);
+        memcpy(bands_get_room(stage->bands) + stage->filled, samples, part * sizeof *samples);
         stage->filled += (uint32_t)part;
         samples += part;
         n -= part;
         if (stage->filled == stage->block_frames) {
             stage->filled = 0;
-            pulses_search(pulses, index, stage->block);
+            pulses_search(pulses, index);
         }
     }
 }
@@ -245,6 +236,5 @@ void stages_destroy(struct pulses *pulses)
         bands_destroy(pulses->stages[s].bands);
         decimator_destroy(pulses->stages[s].decimator);
         free(pulses->stages[s].decimated);
-        free(pulses->stages[s].block);
     }
 }

@@ -20,12 +20,24 @@ typedef int32_t lane_mask __attribute__((vector_size(16)));
  * (-std=c11), so that the results are the same. Not for sanitizers, which start later than that choice. */
 #define WIDE_LANES 8u
 typedef float wide_lanes __attribute__((vector_size(32)));
+typedef int32_t wide_mask __attribute__((vector_size(32)));
 #if defined(__x86_64__) && defined(__GNUC__) && !defined(__clang__) && !defined(__SANITIZE_ADDRESS__) &&     \
     !defined(__SANITIZE_THREAD__)
 #define LANES_WIDE __attribute__((target_clones("avx2", "default")))
 #else
 #define LANES_WIDE
 #endif
+
+/* By address: compilers pass such a register differently with and without AVX2. */
+static inline void wide_load(wide_lanes *out, const float *from)
+{
+    memcpy(out, from, sizeof *out);
+}
+
+static inline void wide_store(float *to, const wide_lanes *from)
+{
+    memcpy(to, from, sizeof *from);
+}
 
 /* From and to memory of any alignment. */
 static inline lanes lanes_load(const float *from)
