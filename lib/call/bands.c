@@ -346,9 +346,13 @@ static bool store_group(struct bands *bands, uint32_t g)
     for (uint32_t b = g * WIDE_LANES; b < bands->n && b < (g + 1) * WIDE_LANES; b += LANES) {
         float *block = bands->power + (size_t)b * bands->stride + bands->at;
         const uint32_t n_lanes = bands->n - b < LANES ? bands->n - b : LANES, lane = b % WIDE_LANES;
-        for (uint32_t slot = 0; slot < bands->block_slots; slot += LANES)
+        uint32_t slot = 0;
+        for (; slot + LANES <= bands->block_slots; slot += LANES)
             turn((const float(*)[WIDE_LANES]) & bands->slots[slot][lane], block + slot, bands->stride,
                  n_lanes);
+        for (; slot < bands->block_slots; slot++)
+            for (uint32_t l = 0; l < n_lanes; l++)
+                block[l * bands->stride + slot] = bands->slots[slot][lane + l];
         for (uint32_t l = 0; l < n_lanes; l++)
             finite = finite && isfinite(block[l * bands->stride + bands->block_slots - 1]);
     }
