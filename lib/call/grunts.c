@@ -14,6 +14,7 @@
 #define LEAST_PEAK 0.4 /* of the autocorrelation, over its value at 0 ... */
 #define LEAST_RISE 0.3 /* ... and over the trough before it */
 #define FIRST 0.8      /* the first peak with so much of the greatest is the period */
+#define RINGS 0.42     /* more of the energy in the first third is an impulse that rings down */
 #define ALIKE_RATE 0.2
 #define MAX_ALIKE 32
 #define CARRIED 0.4 /* of the decimated rate */
@@ -168,14 +169,17 @@ static void end_grunt(struct grunts *grunts, uint64_t known_frame, const struct 
         return;
     uint64_t first = grunts->n_slots - grunts->open;
     double rate_hz = pulse_rate(grunts, n);
-    for (uint32_t i = 0; i < n; i++)
+    double first_third = 0;
+    for (uint32_t i = 0; i < n; i++) {
         power += (double)grunts->slots[i] / n;
+        first_third += 3 * i < n ? (double)grunts->slots[i] / n : 0;
+    }
     struct grunt grunt = {.start_frame = frame_of(grunts, first > WINDOW / 2 ? first - WINDOW / 2 : 0),
                           .end_frame = frame_of(grunts, grunts->n_slots - WINDOW),
                           .rate_hz = rate_hz,
                           .snr_db = units_power_db(power * WINDOW / grunts->background),
                           .mean_square = power};
-    if (rate_hz > 0)
+    if (rate_hz > 0 && first_third <= RINGS * power)
         take_grunt(grunts, &grunt, known_frame, sink);
 }
 

@@ -6,8 +6,9 @@
  *
  * The band of the class, on the decimated copy (call/lines.h), is cut into slots of about 1 ms. What stands
  * over the median of its own power for min_s to max_s, and whose envelope's autocorrelation has its first
- * peak at low_rate_hz to high_rate_hz with a trough before it, is a grunt; min_repeats of the same rate
- * within memory_s are recognised, and those before then too. */
+ * peak at low_rate_hz to high_rate_hz with a trough before it, is a
+ * grunt, unless 0.42 of its energy is in its first third (an impulse that rings down); min_repeats of the
+ * same rate within memory_s are recognised, and those before then too. */
 #ifndef CALL_GRUNTS_H
 #define CALL_GRUNTS_H
 

@@ -193,17 +193,28 @@ static void describe(const struct confounder *confounder, uint64_t seed, double 
     fill(confounder, out, &random);
 }
 
+/* Since the last impulse that began before the call did; NAN: none. */
+static double since_impulse_s(const struct chain *chain, double start_s)
+{
+    double since_s = NAN;
+    for (uint32_t i = 0; i < chain->n_impulses; i++)
+        if (chain->impulses_s[i] <= start_s)
+            since_s = fmin(isnan(since_s) ? INFINITY : since_s, start_s - chain->impulses_s[i]);
+    return since_s;
+}
+
 /* Every call that is taken for an animal's: which sea, and where in it. */
 static void list_false(const struct chain *chain, uint64_t seed, json_t *out)
 {
     for (uint32_t i = 0; i < chain->n_calls; i++) {
         const struct chain_call *call = &chain->calls[i];
         if (call->n_sounds == 0)
-            json_array_append_new(out, json_pack("[I, s, o, o, o, o, o]", (json_int_t)seed,
+            json_array_append_new(out, json_pack("[I, s, o, o, o, o, o, o]", (json_int_t)seed,
                                                  chain->catalogue->classes[call->class_index].name,
                                                  calls_number(call->start_s), calls_number(call->end_s),
                                                  calls_number(call->low_hz), calls_number(call->high_hz),
-                                                 calls_number(call->snr_db)));
+                                                 calls_number(call->snr_db),
+                                                 calls_number(since_impulse_s(chain, call->start_s))));
     }
 }
 
@@ -261,7 +272,8 @@ json_t *calls_confounder(const struct calls_setup *setup, uint32_t number, doubl
     const struct catalogue *catalogue = setup->catalogue;
     struct counts counts = {0};
     json_t *calls = json_object();
-    counts.false_calls = json_array(); /* seed of the sea, class, start, end, band, SNR */
+    counts.false_calls =
+        json_array(); /* seed of the sea, class, start, end, band, SNR, seconds since an impulse */
     double done_s = 0;
     for (uint32_t i = 0; done_s < hours * 3600 - 1; i++) {
         double seconds = fmin(CALLS_STRETCH_S, hours * 3600 - done_s);
