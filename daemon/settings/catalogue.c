@@ -12,10 +12,10 @@
 static const char *const forms[] = {[CALL_TONE] = "tone", [CALL_TRAIN] = "train", [CALL_NOISE] = "noise"};
 
 static const char *const manners[MANNER_COUNT] = {
-    [MANNER_NONE] = "",         [MANNER_BURST] = "burst",     [MANNER_HOPS] = "hops",
-    [MANNER_LINE] = "line",     [MANNER_PICK_UP] = "pick-up", [MANNER_FLOW] = "flow",
-    [MANNER_BEATS] = "beats",   [MANNER_HUMP] = "hump",       [MANNER_SNAPS] = "snaps",
-    [MANNER_RHYTHM] = "rhythm", [MANNER_IMPULSE] = "impulse",
+    [MANNER_NONE] = "",       [MANNER_BURST] = "burst",     [MANNER_HOPS] = "hops",
+    [MANNER_LINE] = "line",   [MANNER_PICK_UP] = "pick-up", [MANNER_FLOW] = "flow",
+    [MANNER_BEATS] = "beats", [MANNER_HUMP] = "hump",       [MANNER_GRUNTS] = "grunts",
+    [MANNER_SNAPS] = "snaps", [MANNER_RHYTHM] = "rhythm",   [MANNER_IMPULSE] = "impulse",
 };
 
 /* low < high, at the higher one's key. */
@@ -119,6 +119,26 @@ static void read_train(struct group_reader *group, struct train_shape *train)
         check_order(group, train->upper_low_hz, train->upper_high_hz, "upper_low_hz", "upper_high_hz");
 }
 
+static void read_song(struct group_reader *root, const char *form, struct song_shape *song)
+{
+    struct group_reader group;
+    double units = 0, kinds = 1;
+    if (!group_child(root, "song", READER_OPTIONAL, &group))
+        return;
+    if (strcmp(form, "tone") != 0)
+        group_problem(root, "song", "is of a %s; allowed of: tone", form);
+    group_number(&group, "min_units", READER_REQUIRED, 2, 32, &units);
+    group_number(&group, "min_kinds", READER_REQUIRED, 1, 8, &kinds);
+    group_number(&group, "within_s", READER_REQUIRED, 1, 600, &song->within_s);
+    group_number(&group, "min_unit_s", READER_REQUIRED, 0, 60, &song->min_unit_s);
+    group_number(&group, "lone_evidence", READER_REQUIRED, 0, 20, &song->lone_evidence);
+    group_number(&group, "lone_s", READER_REQUIRED, 0, 3600, &song->lone_s);
+    group_number(&group, "repeat_evidence", READER_REQUIRED, 0, 20, &song->repeat_evidence);
+    song->min_units = (uint32_t)units;
+    song->min_kinds = (uint32_t)kinds;
+    group_done(&group);
+}
+
 static void read_sound(struct group_reader *group, struct other_shape *sound)
 {
     unsigned manner = 0;
@@ -176,6 +196,8 @@ static void read_class(struct group_reader *root, struct call_class *class)
             read_train(&shape, &class->train);
         group_done(&shape);
     }
+    if (has_form && class->animal)
+        read_song(root, forms[form], &class->song);
     if (has_form)
         group_done(root);
 }

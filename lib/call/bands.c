@@ -23,22 +23,26 @@
  * freedoms of 5 to 10. */
 #define UPCROSSINGS 0.102
 
+/* WIDE_LANES bands side by side. */
 struct group {
-    lanes gain, a1[SECTIONS], a2[SECTIONS];
-    lanes y1[SECTIONS], y2[SECTIONS]; /* each section's last two outputs */
-    float x1, x2;                     /* the last two samples */
+    wide_lanes gain, a1[SECTIONS], a2[SECTIONS];
+    wide_lanes y1[SECTIONS], y2[SECTIONS]; /* each section's last two outputs */
+    float x1, x2;                          /* the last two samples */
 };
 
 struct bands {
     double rate_hz;
     uint32_t n, n_groups, slot_frames, block_slots, history_slots;
+    bool has_room;                    /* the next block has its place already */
     uint32_t stride, at;              /* of the rows of power, and where in them the last block begins */
     struct filter filters[BANDS_MAX]; /* the same in double precision, for what is computed at start */
     struct band_edges edges[BANDS_MAX];
     double delay[BANDS_MAX];
-    struct group groups[BANDS_MAX / LANES];
-    float *power;   /* [n_groups * LANES][stride] */
-    float *samples; /* [stride * slot_frames] */
+    float block_sums[BANDS_MAX];
+    struct group groups[BANDS_MAX / WIDE_LANES];
+    float *power;               /* [n][stride] */
+    float *samples;             /* [stride * slot_frames] */
+    float (*slots)[WIDE_LANES]; /* [block_slots]: of the group at work */
 };
 
 bool bands_rate_carries(double rate_hz, struct band_edges edges)
@@ -194,8 +198,8 @@ double window_quantile(const struct window_statistics *statistics, double normal
 static void fill_group(struct bands *bands, uint32_t g)
 {
     struct group *group = &bands->groups[g];
-    for (uint32_t l = 0; l < LANES; l++) {
-        uint32_t b = g * LANES + l;
+    for (uint32_t l = 0; l < WIDE_LANES; l++) {
+        uint32_t b = g * WIDE_LANES + l;
         const struct filter *filter = &bands->filters[b < bands->n ? b : bands->n - 1];
         double gain = 1; /* the zeros, three at 0 Hz and three at half the rate, are split evenly */
         for (int s = 0; s < SECTIONS; s++) {
@@ -215,22 +219,23 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     for (uint32_t b = 0; b < n; b++)
         if (!bands_rate_carries(rate_hz, edges[b]))
             return STATUS_BAD_ARGUMENT;
-    struct bands *bands = aligned_alloc(16, (sizeof *bands + 15) / 16 * 16);
+    struct bands *bands = aligned_alloc(32, (sizeof *bands + 31) / 32 * 32);
     if (!bands)
         return STATUS_NO_MEMORY;
     memset(bands, 0, sizeof *bands);
     bands->rate_hz = rate_hz;
     bands->n = n;
-    bands->n_groups = (n + LANES - 1) / LANES;
+    bands->n_groups = (n + WIDE_LANES - 1) / WIDE_LANES;
     bands->slot_frames = slot_frames;
     bands->block_slots = block_slots;
-    bands->history_slots = bands->at = history_slots;
+    bands->history_slots = bands->at = history_slots + block_slots; /* of the block that is being filled */
     uint32_t spare = SPARE_HISTORIES * history_slots / block_slots + SPARE_BLOCKS;
-    bands->stride = history_slots + spare * block_slots;
-    bands->power = calloc((size_t)bands->n_groups * LANES * bands->stride, sizeof(float));
+    bands->stride = bands->history_slots + spare * block_slots;
+    bands->power = calloc((size_t)n * bands->stride, sizeof(float));
     bands->samples = calloc((size_t)bands->stride * slot_frames, sizeof(float));
+    bands->slots = calloc(block_slots, sizeof *bands->slots);
     double *response = malloc(RESPONSE_FRAMES * sizeof *response);
-    if (!bands->power || !bands->samples || !response) {
+    if (!bands->power || !bands->samples || !bands->slots || !response) {
         free(response);
         bands_destroy(bands);
         return STATUS_NO_MEMORY;
@@ -255,30 +260,27 @@ void bands_reset(struct bands *bands)
         memset(group->y2, 0, sizeof group->y2);
         group->x1 = group->x2 = 0;
     }
-    memset(bands->power, 0, sizeof(float) * bands->n_groups * LANES * bands->stride);
+    memset(bands->power, 0, sizeof(float) * bands->n * bands->stride);
     memset(bands->samples, 0, sizeof(float) * bands->stride * bands->slot_frames);
+    memset(bands->block_sums, 0, sizeof bands->block_sums);
 }
 
 /* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
  * next section needs of its inputs, and the chain from frame to frame is one product and one sum long. */
-static inline lanes section(lanes difference, lanes a1, lanes a2, lanes y1, lanes y2)
-{
-    return (difference - a2 * y2) - a1 * y1;
-}
+#define SECTION(difference, s) (((difference)-g.a2[s] * g.y2[s]) - g.a1[s] * g.y1[s])
 
-static void filter_group(struct bands *bands, struct group *group, const float *x, float *out)
+LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_t n_slots,
+                                    uint32_t slot_frames, float out[][WIDE_LANES], float *out_sums)
 {
     struct group g = *group;
-    const size_t stride = bands->stride;
-    const float scale = 1.0F / (float)bands->slot_frames;
-    for (uint32_t slot = 0; slot < bands->block_slots; slot++) {
-        lanes sum = {0};
-        for (uint32_t k = 0; k < bands->slot_frames; k++, x++) {
-            const float rise = *x - g.x2;
-            const lanes first =
-                section(g.gain * (lanes){rise, rise, rise, rise}, g.a1[0], g.a2[0], g.y1[0], g.y2[0]);
-            const lanes second = section(first - g.y2[0], g.a1[1], g.a2[1], g.y1[1], g.y2[1]);
-            const lanes third = section(second - g.y2[1], g.a1[2], g.a2[2], g.y1[2], g.y2[2]);
+    const float scale = 1.0F / (float)slot_frames;
+    wide_lanes block = {0};
+    for (uint32_t slot = 0; slot < n_slots; slot++) {
+        wide_lanes sum = {0};
+        for (uint32_t k = 0; k < slot_frames; k++, x++) {
+            const wide_lanes first = SECTION(g.gain * (*x - g.x2), 0);
+            const wide_lanes second = SECTION(first - g.y2[0], 1);
+            const wide_lanes third = SECTION(second - g.y2[1], 2);
             g.x2 = g.x1;
             g.x1 = *x;
             g.y2[0] = g.y1[0];
@@ -289,9 +291,11 @@ static void filter_group(struct bands *bands, struct group *group, const float *
             g.y1[2] = third;
             sum += third * third;
         }
-        for (uint32_t l = 0; l < LANES; l++)
-            out[l * stride + slot] = sum[l] * scale;
+        sum *= scale;
+        memcpy(out[slot], &sum, sizeof sum);
+        block += sum;
     }
+    memcpy(out_sums, &block, sizeof block);
     *group = g;
 }
 
@@ -301,7 +305,7 @@ static void next_place(struct bands *bands)
     bands->at += bands->block_slots;
     if (bands->at + bands->block_slots <= bands->stride)
         return;
-    for (uint32_t b = 0; b < bands->n_groups * LANES; b++) {
+    for (uint32_t b = 0; b < bands->n; b++) {
         float *row = bands->power + (size_t)b * bands->stride;
         memmove(row, row + bands->at - bands->history_slots, bands->history_slots * sizeof *row);
     }
@@ -311,30 +315,89 @@ static void next_place(struct bands *bands)
     bands->at = bands->history_slots;
 }
 
-void bands_push(struct bands *bands, const float *samples)
+float *bands_get_room(struct bands *bands)
+{
+    if (!bands->has_room)
+        next_place(bands);
+    bands->has_room = true;
+    return bands->samples + (size_t)bands->at * bands->slot_frames;
+}
+
+/* Rows of four lanes become columns of four slots. */
+static inline void turn(const float (*slots)[WIDE_LANES], float *out, size_t stride, uint32_t n_lanes)
+{
+    const lanes a = lanes_load(slots[0]), b = lanes_load(slots[1]), c = lanes_load(slots[2]),
+                d = lanes_load(slots[3]);
+    const lanes ab = __builtin_shufflevector(a, b, 0, 4, 1, 5),
+                cd = __builtin_shufflevector(c, d, 0, 4, 1, 5);
+    const lanes ef = __builtin_shufflevector(a, b, 2, 6, 3, 7),
+                gh = __builtin_shufflevector(c, d, 2, 6, 3, 7);
+    const lanes turned[LANES] = {
+        __builtin_shufflevector(ab, cd, 0, 1, 4, 5), __builtin_shufflevector(ab, cd, 2, 3, 6, 7),
+        __builtin_shufflevector(ef, gh, 0, 1, 4, 5), __builtin_shufflevector(ef, gh, 2, 3, 6, 7)};
+    for (uint32_t l = 0; l < n_lanes; l++)
+        lanes_store(out + l * stride, turned[l]);
+}
+
+/* The slots of a group to the rows of its bands; gives whether all are finite at the end. */
+static bool store_group(struct bands *bands, uint32_t g)
 {
     bool finite = true;
-    next_place(bands);
-    memcpy(bands->samples + (size_t)bands->at * bands->slot_frames, samples,
-           (size_t)bands->block_slots * bands->slot_frames * sizeof *samples);
-    for (uint32_t g = 0; g < bands->n_groups; g++) {
-        float *block = bands->power + (size_t)g * LANES * bands->stride + bands->at;
-        filter_group(bands, &bands->groups[g], samples, block);
-        for (uint32_t l = 0; l < LANES; l++)
+    for (uint32_t b = g * WIDE_LANES; b < bands->n && b < (g + 1) * WIDE_LANES; b += LANES) {
+        float *block = bands->power + (size_t)b * bands->stride + bands->at;
+        const uint32_t n_lanes = bands->n - b < LANES ? bands->n - b : LANES, lane = b % WIDE_LANES;
+        uint32_t slot = 0;
+        for (; slot + LANES <= bands->block_slots; slot += LANES)
+            turn((const float(*)[WIDE_LANES]) & bands->slots[slot][lane], block + slot, bands->stride,
+                 n_lanes);
+        for (; slot < bands->block_slots; slot++)
+            for (uint32_t l = 0; l < n_lanes; l++)
+                block[l * bands->stride + slot] = bands->slots[slot][lane + l];
+        for (uint32_t l = 0; l < n_lanes; l++)
             finite = finite && isfinite(block[l * bands->stride + bands->block_slots - 1]);
+    }
+    return finite;
+}
+
+void bands_push_room(struct bands *bands)
+{
+    const float *samples = bands_get_room(bands);
+    bool finite = true;
+    bands->has_room = false;
+    for (uint32_t g = 0; g < bands->n_groups; g++) {
+        filter_group(&bands->groups[g], samples, bands->block_slots, bands->slot_frames, bands->slots,
+                     bands->block_sums + (size_t)g * WIDE_LANES);
+        finite = store_group(bands, g) && finite;
     }
     if (!finite)
         bands_reset(bands);
 }
 
+void bands_push(struct bands *bands, const float *samples)
+{
+    memcpy(bands_get_room(bands), samples, (size_t)bands->block_slots * bands->slot_frames * sizeof *samples);
+    bands_push_room(bands);
+}
+
+/* Where in the rows the last block begins. */
+static uint32_t last_block(const struct bands *bands)
+{
+    return bands->has_room ? bands->at - bands->block_slots : bands->at;
+}
+
 const float *bands_get_power(const struct bands *bands, uint32_t b)
 {
-    return bands->power + (size_t)b * bands->stride + bands->at;
+    return bands->power + (size_t)b * bands->stride + last_block(bands);
+}
+
+double bands_get_block_sum(const struct bands *bands, uint32_t b)
+{
+    return bands->block_sums[b];
 }
 
 const float *bands_get_samples(const struct bands *bands)
 {
-    return bands->samples + (size_t)bands->at * bands->slot_frames;
+    return bands->samples + (size_t)last_block(bands) * bands->slot_frames;
 }
 
 double bands_get_delay(const struct bands *bands, uint32_t b)
@@ -363,5 +426,6 @@ void bands_destroy(struct bands *bands)
         return;
     free(bands->power);
     free(bands->samples);
+    free(bands->slots);
     free(bands);
 }

@@ -1,8 +1,8 @@
 /* A bank of band-pass filters of one channel and the short-time power behind each: the front end that all
  * pulse classes share. Butterworth band-passes of order 3 (bilinear transform with prewarped edges, Oppenheim
- * and Schafer, "Discrete-Time Signal Processing", section 7.2), four of them side by side in one vector, so
- * that four bands cost what one would. Power is summed over *slots* of a few frames; a pulse detector adds
- * slots up to its own window. */
+ * and Schafer, "Discrete-Time Signal Processing", section 7.2), eight of them side by side in one vector
+ * (dsp/lanes.h), so that eight bands cost what one would. Power is summed over *slots* of a few frames; a
+ * pulse detector adds slots up to its own window. */
 #ifndef CALL_BANDS_H
 #define CALL_BANDS_H
 
@@ -38,9 +38,15 @@ void bands_reset(struct bands *bands);
 /* Takes block_slots * slot_frames samples. Samples that are not finite empty the filters (the block then has
  * no power) instead of staying in them for ever. */
 void bands_push(struct bands *bands, const float *samples);
+/* The same without a copy: where the samples of the next block are to be written, and once they are there.
+ * Pointers to the last block are to be got anew once there is room for the next. */
+float *bands_get_room(struct bands *bands);
+void bands_push_room(struct bands *bands);
 /* Mean square of each slot of the last block in band b: [block_slots], with [-history_slots .. -1] before it
  * readable. Valid until the next push. */
 const float *bands_get_power(const struct bands *bands, uint32_t b);
+/* Sum of the slots of the last block in band b. */
+double bands_get_block_sum(const struct bands *bands, uint32_t b);
 /* The samples of the last block as they were pushed, [block_slots * slot_frames], with as many before them as
  * history_slots covers. Valid until the next push. */
 const float *bands_get_samples(const struct bands *bands);

@@ -53,6 +53,14 @@ struct train_shape {
     double tail_s; /* and within this, what is 10 dB weaker */
 };
 
+/* What units of song must be like to say all of their class's evidence (listen/song.h). */
+struct song_shape {
+    uint32_t min_units; /* 0: the class states none */
+    uint32_t min_kinds;
+    double within_s, min_unit_s;
+    double lone_evidence, lone_s, repeat_evidence; /* of units that are no song */
+};
+
 /* How a sound that is no animal's is recognised; call/others.h says each in full. */
 enum manner {
     MANNER_NONE,    /* as a tone or a train: an animal's */
@@ -63,6 +71,7 @@ enum manner {
     MANNER_FLOW,    /* steep low noise that each hydrophone has for itself */
     MANNER_BEATS,   /* noise that swells regularly */
     MANNER_HUMP,    /* steady noise that is louder in its band than below it */
+    MANNER_GRUNTS,  /* short rows of pulses that come again alike */
     MANNER_SNAPS,   /* many sharp pulses in no rhythm */
     MANNER_RHYTHM,  /* pulses whose rhythm is too steady for an animal (call/trains.h) */
     MANNER_IMPULSE, /* an impulse that stands alone (level/impulses.h) */
@@ -77,7 +86,7 @@ struct other_shape {
     double max_extent_hz; /* how far a burst may sweep, in a straight line */
     uint32_t min_repeats; /* bursts alike ... */
     double memory_s;      /* ... within so long; an impulse stands alone for so long; chips in a block */
-    double low_rate_hz, high_rate_hz; /* swells or snaps a second */
+    double low_rate_hz, high_rate_hz; /* swells, snaps or pulses a second */
     uint32_t min_harmonics;           /* of a line */
 };
 
@@ -92,6 +101,7 @@ struct call_class {
     double certainty;       /* 0..1 */
     double evidence;        /* log-odds that one call adds to a contact of the group */
     char source[CATALOGUE_TEXT_SIZE]; /* where the figures come from, with their marks */
+    struct song_shape song;           /* of a tone that is a unit of song */
     struct tone_shape tone;           /* of a tone */
     struct train_shape train;         /* of a train */
     struct other_shape sound;         /* of what is no animal's: instead of both */

@@ -40,7 +40,7 @@ struct line {
 struct lines {
     struct other_setup setup;
     struct means fast, slow;
-    uint32_t factor, sums, filled; /* sums: 4 where samples are summed first, else 1 */
+    uint32_t factor, sums, filled, newest; /* sums: 4 where samples are summed first, else 1 */
     float carried[2];
     float *summed; /* [n / 4] */
     double slow_rate_hz;
@@ -157,7 +157,7 @@ void lines_reset(struct lines *lines, uint64_t next_frame)
         decimator_reset(lines->decimators[i]);
     for (uint32_t c = 0; c < lines->setup.n_classes; c++)
         lines->told[c] = -INFINITY;
-    lines->filled = 0;
+    lines->filled = lines->newest = 0;
     lines->carried[0] = lines->carried[1] = 0;
     lines->flow_periods = 0;
 }
@@ -416,7 +416,7 @@ static void end_slow(struct lines *lines, uint64_t end, const struct found_sink 
     }
     if (lines->setup.pair)
         agree(found, n, means->bin_hz);
-    double late = decimator_get_delay(lines->decimators[0]) * lines->sums;
+    double late = lines_get_late(lines);
     tell_lines(lines, means, found, n, (double)end - late, end - 1, sink);
     look_for_flow(lines, (double)end - late, end - 1, sink);
     clear(lines, means, end);
@@ -474,6 +474,7 @@ void lines_push(struct lines *lines, const struct other_frame *frame, const floa
         for (size_t i = 0; i < n && filled + i < SLOW_N; i++)
             lines->held[c][filled + i] = lines->scratch[i];
     }
+    lines->newest = filled + n > SLOW_N ? SLOW_N - filled : (uint32_t)n;
     lines->filled += (uint32_t)n;
     if (lines->filled < SLOW_N)
         return;
@@ -484,4 +485,20 @@ void lines_push(struct lines *lines, const struct other_frame *frame, const floa
     uint64_t end = frame->start_frame + frame->n;
     if ((double)(end - lines->slow.start_frame) >= PERIOD_S * lines->setup.rate_hz)
         end_slow(lines, end, sink);
+}
+
+double lines_get_slow_rate(const struct lines *lines)
+{
+    return lines->slow_rate_hz;
+}
+
+double lines_get_late(const struct lines *lines)
+{
+    return decimator_get_delay(lines->decimators[0]) * lines->sums;
+}
+
+uint32_t lines_get_slow(const struct lines *lines, const float **out)
+{
+    *out = lines->held[0] + lines->filled - lines->newest;
+    return lines->newest;
 }

@@ -1,6 +1,7 @@
 /* What is heard beside animals: frames and their spectrum for the parts that know the manners. */
 #include "call/others.h"
 #include "call/bursts.h"
+#include "call/grunts.h"
 #include "call/lines.h"
 #include "call/swells.h"
 #include "dsp/spectrum.h"
@@ -20,6 +21,7 @@ struct others {
     struct bursts *bursts;
     struct lines *lines;
     struct swells *swells;
+    struct grunts *grunts;
 };
 
 static enum status fill(struct others *others)
@@ -37,6 +39,9 @@ static enum status fill(struct others *others)
         status = lines_create(setup, &others->lines);
     if (status == STATUS_OK)
         status = swells_create(setup, &others->swells);
+    if (status == STATUS_OK)
+        status = grunts_create(setup, lines_get_slow_rate(others->lines), lines_get_late(others->lines),
+                               &others->grunts);
     return status;
 }
 
@@ -74,6 +79,7 @@ void others_destroy(struct others *others)
     bursts_destroy(others->bursts);
     lines_destroy(others->lines);
     swells_destroy(others->swells);
+    grunts_destroy(others->grunts);
     spectrum_destroy(others->spectrum);
     free(others->first);
     free(others->second);
@@ -88,6 +94,7 @@ void others_reset(struct others *others, uint64_t next_frame)
     bursts_reset(others->bursts);
     lines_reset(others->lines, next_frame);
     swells_reset(others->swells);
+    grunts_reset(others->grunts, next_frame);
 }
 
 static void take_frame(struct others *others, const struct found_sink *sink)
@@ -102,6 +109,9 @@ static void take_frame(struct others *others, const struct found_sink *sink)
     bursts_push(others->bursts, &frame, sink);
     lines_push(others->lines, &frame, setup->pair ? others->second : NULL, sink);
     swells_push(others->swells, &frame, sink);
+    const float *slow;
+    uint32_t n = lines_get_slow(others->lines, &slow);
+    grunts_push(others->grunts, slow, n, frame.start_frame + frame.n - 1, sink);
 }
 
 void others_push(struct others *others, const float *first, const float *second, uint32_t n,

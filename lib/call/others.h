@@ -6,6 +6,7 @@
  *   burst, hops      call/bursts.h: straight tones that come again alike; chips that hop
  *   line, pick-up, flow  call/lines.h: lines that last, on one or on both channels; low noise of one
  *                    hydrophone alone
+ *   grunts           call/grunts.h: short rows of pulses that come again alike
  *   beats, hump, snaps  call/swells.h: noise by its swelling, its spectrum and its sharp peaks
  *
  * The manners 'rhythm' and 'impulse' need nothing of this: they come from call/trains.h and

@@ -259,17 +259,27 @@ static double find_envelope(struct pulse_shaper *shaper, const struct pulse_soun
     return energy;
 }
 
-static float product(const float *a, const float *b, uint32_t n)
+/* Of a profile and itself, summed over lags from `from` to `to`. */
+LANES_WIDE static float sum_products(const float *profile, uint32_t n, uint32_t from, uint32_t to)
 {
-    lanes first = {0}, second = {0};
-    uint32_t i = 0;
-    for (; i + 2 * LANES <= n; i += 2 * LANES) {
-        first += lanes_load(a + i) * lanes_load(b + i);
-        second += lanes_load(a + i + LANES) * lanes_load(b + i + LANES);
+    double sum = 0;
+    for (uint32_t lag = from; lag < to; lag++) {
+        wide_lanes sums = {0}, more = {0}, a, b;
+        uint32_t i = 0;
+        for (; i + 2 * WIDE_LANES <= n - lag; i += 2 * WIDE_LANES) {
+            wide_load(&a, profile + i);
+            wide_load(&b, profile + i + lag);
+            sums += a * b;
+            wide_load(&a, profile + i + WIDE_LANES);
+            wide_load(&b, profile + i + WIDE_LANES + lag);
+            more += a * b;
+        }
+        for (; i < n - lag; i++)
+            sum += profile[i] * profile[i + lag];
+        sums += more;
+        for (uint32_t lane = 0; lane < WIDE_LANES / 2; lane++)
+            sum += sums[lane] + sums[lane + WIDE_LANES / 2];
     }
-    double sum = lanes_sum(first + second);
-    for (; i < n; i++)
-        sum += a[i] * b[i];
     return (float)sum;
 }
 
@@ -284,10 +294,7 @@ static void find_echoes(struct pulse_shaper *shaper, const struct pulse_sound *s
     for (uint32_t l = 0; l < PULSE_SHAPE_LAGS; l++) {
         uint32_t from = shaper->first_lag + (uint32_t)(l * shaper->lag_step);
         uint32_t to = shaper->first_lag + (uint32_t)((l + 1) * shaper->lag_step);
-        float sum = 0;
-        for (uint32_t lag = from; lag < to; lag++)
-            sum += product(shaper->envelope, shaper->envelope + lag, n - lag);
-        out->echoes[l] = sum / (float)fmax(energy, 1e-30);
+        out->echoes[l] = sum_products(shaper->envelope, n, from, to) / (float)fmax(energy, 1e-30);
     }
 }
 

@@ -55,7 +55,6 @@ void trains_reset(struct trains *trains)
 {
     memset(trains->open, 0, sizeof trains->open);
     trains->n_pulses = 0;
-    memset(trains->rate_above, 0, sizeof trains->rate_above);
 }
 
 static bool train_is_open(const struct trains *trains, uint32_t number)
@@ -125,7 +124,7 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
     uint64_t number = trains->n_pulses - 1;
     struct node *node = trains_node(trains, number);
     struct link *link = &node->links[best];
-    if (!trains_may_be_certain(trains, node, link))
+    if (!trains_may_be_certain(trains, link))
         return;
     uint32_t n = trains_walk(trains, number, best, UINT64_MAX, JUDGED_PULSES), hidden = 0;
     for (uint32_t i = 0; i < n; i++) {
@@ -188,7 +187,7 @@ static void claim(struct trains *trains, const struct open_train *open)
         trains_node(trains, number)->owner = open->number;
 }
 
-/* Stray pulses a second that came between the last pulses of a train, at the level of the newest or above. */
+/* Stray pulses a second that came between the last pulses of a train and could have been the newest. */
 static double fading_strays(struct trains *trains, struct open_train *open)
 {
     const struct node *node = trains_node(trains, trains->n_pulses - 1);
@@ -196,9 +195,11 @@ static double fading_strays(struct trains *trains, struct open_train *open)
         return 1;
     open->strays *= FADING;
     open->strays_s = open->strays_s * FADING + node->time_s - trains_node(trains, open->last)->time_s;
-    for (uint64_t k = open->last + 1; k + 1 < trains->n_pulses; k++)
-        open->strays += trains_node(trains, k)->level_db > node->level_db - LEVEL_STEP_DB &&
-                        trains_may_be_one(trains_node(trains, k), node);
+    for (uint64_t k = open->last + 1; k + 1 < trains->n_pulses; k++) {
+        const struct node *stray = trains_node(trains, k);
+        double fit = trains_fit_level(stray->level_db - node->level_db, LEVEL_DEVIATION_DB);
+        open->strays += fit > LEAST_FIT ? fit * trains_fit_shape(stray, node) : 0;
+    }
     return open->strays / fmax(open->strays_s, 1e-3) + trains_noise_rate(trains, node->pulse.snr) +
            RATE_FLOOR;
 }

@@ -5,12 +5,15 @@
  * pulses. A chain's score is its likelihood ratio against pulses that come at random (Poisson) at the rate
  * seen around it: each further pulse at interval I after one of interval J: d = ln(I / (m J)), m - 1 pulses
  * missed, density p_d (1 - p_d)^(m - 1) N(d; s) / I against the rate; a level that differs by A dB costs
- * A^2 / (2 * 6^2). The whole chain is scored with s = max_jitter / 4 and with max_jitter at even odds, and
- * the better one counts. Under randomness the expected ratio of each step is at most 1, so the expected
- * number of chains an hour that ever reach a ratio R is at most 3600 rate / R (Ville's inequality for
- * likelihood ratios, here over the branches). A train is given when R > 3600 rate / false_per_hour: the
- * class's stated rate is a bound in random pulses of any rate, in calm noise as in snapping shrimp, and
- * strong pulses, which noise seldom gives, need fewer of them.
+ * A^2 / (2 * 6^2), one that looks otherwise what its likeness says (call/pulse_shape.h). The rate is that of
+ * strays which could stand in the pulse's place: each counts by the same costs of level and look, a kernel
+ * density (Parzen 1962) of the sea's own strays, so that pings and snaps that are far louder, or look unlike,
+ * do not speak against a chain. The whole chain is scored with s = max_jitter / 4 and with max_jitter, and
+ * with levels that spread by 6 dB and by 2.5 dB, at even odds, and the best one counts. Under randomness the
+ * expected ratio of each step is at most 1, so the expected number of chains an hour that ever reach a ratio
+ * R is at most 3600 rate / R (Ville's inequality for likelihood ratios, here over the branches). A train is
+ * given when R > 3600 rate / false_per_hour: the class's stated rate is a bound in random pulses of any rate,
+ * in calm noise as in snapping shrimp, and strong pulses, which noise seldom gives, need fewer of them.
  *
  * How a long train is given: first as soon as it is certain (at least min_pulses), then again, as a call of
  * its own that begins with the pulse after the last one given, at most every 10 s or 4 longest intervals (or

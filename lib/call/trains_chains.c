@@ -9,9 +9,35 @@
  * own. */
 #define RANK_SHARE 0.25
 
-int trains_level_index(const struct node *node)
+double trains_fit_level(double difference_db, double spread_db)
 {
-    return (int)fmin(LEVELS - 1, fmax(0, node->level_db / LEVEL_STEP_DB - 1));
+    double scaled = difference_db / spread_db;
+    return exp(-scaled * scaled / 2);
+}
+
+/* Looks how often pulses of the newest one's level and look come: the density of those before it, each spread
+ * as the steps of a chain are. */
+static void look_around(struct trains *trains, const struct node *node)
+{
+    double span_s = RATE_INTERVALS * trains->call_class.train.max_interval_s, sum = 0;
+    uint64_t last = trains->n_pulses - 1;
+    struct around *around = &trains->around;
+    around->n = 0;
+    for (uint64_t k = last; k > 0 && around->n < SAMPLED && trains_remember(trains, k - 1); k--) {
+        const struct node *other = trains_node(trains, k - 1);
+        double difference_db = other->level_db - node->level_db;
+        if (node->time_s - other->time_s > span_s)
+            break;
+        bool near = fabs(difference_db) <= LEVEL_GATE_DB;
+        double likeness = near ? pulse_shape_likeness(&node->pulse.shape, &other->pulse.shape) : 0;
+        around->likeness[around->n++] = likeness;
+        if (around->n == SAMPLED)
+            span_s = node->time_s - other->time_s;
+        if (near && other->owner != HIDDEN)
+            sum += trains_fit_level(difference_db, LEVEL_DEVIATION_DB) * exp(likeness);
+    }
+    double rate = sum / fmax(span_s, trains->call_class.train.min_interval_s);
+    around->ln_rate = log(fmax(RANK_SHARE * rate, trains_noise_rate(trains, node->pulse.snr)) + RATE_FLOOR);
 }
 
 /* Takes a link into a pulse's list, which keeps the best few. */
@@ -31,22 +57,15 @@ static void keep(struct node *node, const struct link *link)
     node->links[place] = *link;
 }
 
-/* Adds what the two pulses look like to a link, and takes it. Only what speaks against a pair counts in the
- * score: no factor above 1 that chance could earn. */
-static void look_and_keep(struct node *node, const struct node *from, struct link *link)
+/* Takes a link. Of what two pulses look like only what speaks against the pair counts in the score: no factor
+ * above 1 that chance could earn. */
+static void add_likeness(struct link *link, double likeness)
 {
-    bool full = node->n_links == LINKS;
-    for (uint32_t i = 0; i < LINKS && full; i++)
-        full = node->links[i].rank >= link->rank + PULSE_SHAPE_MOST;
-    if (full)
-        return; /* however alike they are, it would not be kept */
-    double likeness = pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape);
     link->alike += fmax(0, likeness);
     link->gain += fmin(0, likeness);
     link->score[NARROW] += fmin(0, likeness);
     link->score[WIDE] += fmin(0, likeness);
     link->rank += likeness;
-    keep(node, link);
 }
 
 static double ln_density(const struct trains *trains, int spread, double d)
@@ -81,12 +100,12 @@ static struct link first_pair(uint64_t number, double time_s, double ln_interval
 }
 
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
-static void link_from(const struct trains *trains, struct node *node, uint64_t number, double ln_rate)
+static void link_from(const struct trains *trains, struct node *node, uint64_t number, double likeness)
 {
     const struct train_shape *shape = &trains->call_class.train;
     const struct node *from = trains_node(trains, number);
     double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
-    double ln_interval = log(interval);
+    double ln_interval = log(interval), ln_rate = trains->around.ln_rate;
     double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
     if (interval <= shape->max_interval_s && from->owner == 0)
@@ -123,8 +142,10 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .alike = link->alike,
                              .rank = rank};
     }
-    if (best.rank > -INFINITY)
-        look_and_keep(node, from, &best);
+    if (best.rank > -INFINITY) {
+        add_likeness(&best, likeness);
+        keep(node, &best);
+    }
 }
 
 uint32_t trains_walk(struct trains *trains, uint64_t number, uint32_t link, uint64_t until, uint32_t most)
@@ -160,19 +181,22 @@ double trains_walked_jitter(const struct trains *trains, uint32_t n)
 }
 
 /* Links the newest pulse to those before. */
-static void link_back(const struct trains *trains, struct node *node)
+static void link_back(struct trains *trains, struct node *node)
 {
     const struct train_shape *shape = &trains->call_class.train;
-    double ln_rate = log(trains_noise_rate(trains, node->pulse.snr) +
-                         RANK_SHARE * trains->rate_above[trains_level_index(node)] + RATE_FLOOR);
-    for (uint64_t k = trains->n_pulses - 1; k > 0 && trains_remember(trains, k - 1); k--) {
+    uint64_t last = trains->n_pulses - 1;
+    look_around(trains, node);
+    for (uint64_t k = last; k > 0 && trains_remember(trains, k - 1); k--) {
         const struct node *from = trains_node(trains, k - 1);
         double gap = node->time_s - from->time_s;
         if (gap > MAX_STEP * shape->max_interval_s)
             break;
         if (gap >= shape->min_interval_s && from->owner != HIDDEN &&
             fabs(node->level_db - from->level_db) <= LEVEL_GATE_DB)
-            link_from(trains, node, k - 1, ln_rate);
+            link_from(trains, node, k - 1,
+                      last - k < trains->around.n
+                          ? trains->around.likeness[last - k]
+                          : pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape));
     }
 }
 
@@ -182,15 +206,9 @@ void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t 
     if (trains->n_pulses >= RING && node->owner == 0)
         rejections[REJECT_NO_RHYTHM]++;
     double time_s = pulse->frame / trains->rate_hz;
-    double memory_s = RATE_INTERVALS * trains->call_class.train.max_interval_s;
-    double gap = trains->n_pulses ? time_s - trains_node(trains, trains->n_pulses - 1)->time_s : 0;
-    double keep_share = exp(-gap / memory_s), level_db = units_power_db(pulse->snr);
-    for (int l = 0; l < LEVELS; l++)
-        trains->rate_above[l] =
-            trains->rate_above[l] * keep_share + (level_db >= l * LEVEL_STEP_DB ? 1 / memory_s : 0);
     node->time_s = time_s;
     node->pulse = *pulse;
-    node->level_db = level_db;
+    node->level_db = units_power_db(pulse->snr);
     node->owner = 0;
     node->n_links = 0;
     trains->n_pulses++;

@@ -5,6 +5,8 @@
 #include <stdlib.h>
 #include <string.h>
 
+#define FEWEST_SHARE 0.4 /* of the rate by which chains are compared: surely too low */
+
 /* Pulses that compete with a chain: within its time all that are not its own; before, all of no train (a
  * train that was given is no chance). */
 struct competitors { /* counted in competing[] */
@@ -25,9 +27,12 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
     uint32_t member = 0;
     const struct node *one = trains_node(trains, trains->members[0]);
     const struct node *other = trains_node(trains, trains->members[n / 2]);
-    double least_db = INFINITY;
-    for (uint32_t i = 0; i < n; i++)
-        least_db = fmin(least_db, trains_node(trains, trains->members[i])->level_db - LEVEL_STEP_DB);
+    double least_db = INFINITY, most_db = -INFINITY;
+    for (uint32_t i = 0; i < n; i++) {
+        double level_db = trains_node(trains, trains->members[i])->level_db;
+        least_db = fmin(least_db, level_db - LEVEL_GATE_DB);
+        most_db = fmax(most_db, level_db + LEVEL_GATE_DB);
+    }
     memset(trains->competing, 0, sizeof trains->competing);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1) && reached <= span; k--) {
         const struct node *node = trains_node(trains, k - 1);
@@ -36,13 +41,11 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
         if (member < n && trains->members[member] == k - 1) {
             member++;
         } else if (node->owner != HIDDEN && reached <= span && (within || node->owner == 0) &&
-                   node->level_db > least_db &&
-                   (trains_may_be_one(node, one) || trains_may_be_one(node, other))) {
-            trains->competing[competing_step(node->level_db)]++;
+                   node->level_db > least_db && node->level_db < most_db) {
+            double fit = fmax(trains_fit_shape(node, one), trains_fit_shape(node, other));
+            trains->competing[competing_step(node->level_db)] += (float)fit;
         }
     }
-    for (uint32_t i = COMPETING_STEPS - 1; i > 0; i--)
-        trains->competing[i - 1] += trains->competing[i];
     if (trains->n_pulses <= RING)
         reached = end; /* nothing is forgotten: the time before the first pulse was heard too */
     found.time_s = fmax(fmin(reached, span), trains->call_class.train.max_interval_s);
@@ -64,53 +67,89 @@ static double walked_score(const struct trains *trains, uint32_t n)
     return fmax(score[NARROW], score[WIDE]) - log(2);
 }
 
-/* The rate at which stray pulses compete with one of the chain's n: those that noise does not explain. A
- * chain picked out of many strays has taken some of them for its own, which is made good: the share that
- * strays have among all; and since they are counted over a short time, one more and a standard deviation are
- * added. */
-static double competing_strays(const struct trains *trains, const struct node *node,
-                               const struct competitors *found, uint32_t n)
+/* How many of the strays could have stood in the place of a pulse of that level, in a chain whose levels
+ * spread so. */
+static double competing_about(const struct trains *trains, double level_db, double spread_db)
 {
-    double limit_db = node->level_db - LEVEL_STEP_DB;
-    double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
-    double noise =
-        fmin(trains_noise_rate(trains, least_snr), trains_noise_rate(trains, units_power_ratio(limit_db)));
-    double around = trains->competing[competing_step(limit_db)];
-    double excess = fmax(0, around - noise * found->time_s);
-    return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s;
+    double sum = 0, reach_db = GATE_DEVIATIONS * spread_db;
+    uint32_t last = competing_step(level_db + reach_db);
+    for (uint32_t s = competing_step(level_db - reach_db); s <= last; s++)
+        if (trains->competing[s] > 0)
+            sum += (double)trains->competing[s] *
+                   trains_fit_level((s + 0.5) * COMPETING_STEP_DB - level_db, spread_db);
+    return sum;
 }
 
-/* The ratio of the chain is held against how often pulses such as its first come; of one that stands, the
- * earliest pulses may be chance that happened to lead to it, so it is given from where it stands best. */
-uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
+/* How many of them a second noise explains. */
+static double noise_about(const struct trains *trains, double level_db, double spread_db)
 {
-    double rates = 0, best = 0, false_s = 3600 / trains->call_class.false_per_hour;
+    const double step_db = 1, last_db = level_db + GATE_DEVIATIONS * spread_db;
+    double least_db = trains->call_class.train.min_snr_db, sum = 0;
+    double above = trains_noise_rate(trains, units_power_ratio(least_db));
+    for (double at_db = least_db; at_db < last_db && above > 1e-6; at_db += step_db) {
+        double next = trains_noise_rate(trains, units_power_ratio(at_db + step_db));
+        sum += (above - next) * trains_fit_level(at_db + step_db / 2 - level_db, spread_db);
+        above = next;
+    }
+    return sum;
+}
+
+/* The rate at which stray pulses compete with one of the chain's n: noise, and those that noise does not
+ * explain. A chain picked out of many strays has taken some of them for its own, which is made good: the
+ * share that strays have among all; and since they are counted over a short time, one more and a standard
+ * deviation are added. */
+static double competing_rate(const struct trains *trains, const struct node *node, double spread_db,
+                             const struct competitors *found, uint32_t n)
+{
     double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
-    struct competitors found = gather_competitors(trains, n);
+    double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, spread_db);
+    double around = competing_about(trains, node->level_db, spread_db);
+    double excess = fmax(0, around - noise_about(trains, node->level_db, spread_db) * found->time_s);
+    return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s + noise + RATE_FLOOR;
+}
+
+/* How many of the chain's n are most surely more than chance, if its levels spread so, and how surely. */
+static uint32_t find_surest(const struct trains *trains, const struct competitors *found, uint32_t n,
+                            uint32_t least, double spread_db, double *out_over)
+{
+    double rates = 0, changes = 0, false_s = 3600 / trains->call_class.false_per_hour;
+    /* The links' scores have the wide spread's cost in them. */
+    double cost = 0.5 / (spread_db * spread_db) - 0.5 / (LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     uint32_t surest = 0;
-    bool whole = false;
     for (uint32_t i = 0; i < n; i++) {
         const struct node *node = trains_node(trains, trains->members[i]);
-        double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, LEVEL_DEVIATION_DB);
-        double rate = competing_strays(trains, node, &found, n) + noise + RATE_FLOOR;
+        double rate = competing_rate(trains, node, spread_db, found, n);
+        if (i > 0)
+            changes += pow(node->level_db - trains_node(trains, trains->members[i - 1])->level_db, 2);
         if (i + 1 >= least && i > 0) {
-            double over = walked_score(trains, i + 1) - rates - log(false_s * rate);
-            whole = over > 0; /* at last, of all */
-            if (over > best) {
-                best = over;
+            double over = walked_score(trains, i + 1) - cost * changes - rates - log(false_s * rate);
+            if (over > *out_over) {
+                *out_over = over;
                 surest = i + 1;
             }
         }
         rates += log(rate);
     }
-    return whole ? surest : 0;
+    return surest;
 }
 
-bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link)
+/* The ratio of the chain is held against how often pulses such as its first come. Its earliest pulses may be
+ * chance that happened to lead to it, so it is given from where it stands best: the bound is on all starts
+ * together. Levels are steady or sweep, at even odds. */
+uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 {
-    double steps = fmin(link->n, JUDGED_PULSES) - 1;
-    double score = fmax(link->score[NARROW], link->score[WIDE]) * fmin(1, JUDGED_PULSES / (double)link->n);
-    double within = (double)(trains->n_pulses - link->first) - link->n;
-    double low_rate = within / (node->time_s - link->first_time_s) / 10 + RATE_FLOOR;
-    return score - steps * log(low_rate) > log(3600 * low_rate / trains->call_class.false_per_hour);
+    struct competitors found = gather_competitors(trains, n);
+    double over = log(2);
+    uint32_t wide = find_surest(trains, &found, n, least, LEVEL_DEVIATION_DB, &over);
+    uint32_t steady = find_surest(trains, &found, n, least, STEADY_DEVIATION_DB, &over);
+    return steady ? steady : wide;
+}
+
+bool trains_may_be_certain(const struct trains *trains, const struct link *link)
+{
+    double judged = fmin(1, JUDGED_PULSES / (double)link->n), steps = judged * link->n - 1;
+    double low_rate = 1 / (RATE_INTERVALS * trains->call_class.train.max_interval_s) + RATE_FLOOR;
+    double score = fmax(link->score[NARROW], link->score[WIDE]) + link->alike - link->ln_rates;
+    return judged * score - steps * log(FEWEST_SHARE) >
+           log(3600 * low_rate / trains->call_class.false_per_hour);
 }

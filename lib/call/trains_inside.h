@@ -4,6 +4,7 @@
 #define CALL_TRAINS_INSIDE_H
 
 #include "call/trains.h"
+#include <math.h>
 #include <stdbool.h>
 
 #define RING 1024 /* pulses remembered */
@@ -11,17 +12,17 @@
 #define MAX_OPEN 16
 #define MAX_STEP 3 /* intervals between neighbours of a chain: two missed pulses */
 #define GATE_DEVIATIONS 2.5
-#define DETECTED 0.8         /* chance that a pulse of a train is found at all */
-#define LEVEL_DEVIATION_DB 6 /* between neighbours: a beam that sweeps past changes it by up to 8 dB */
-#define LEVEL_GATE_DB 15     /* no neighbours beyond */
-#define JUDGED_PULSES 64     /* the last ones of a chain decide whether it is a train */
-#define LEVELS 24            /* steps of 3 dB in which pulses are counted */
-#define LEVEL_STEP_DB 3
+#define DETECTED 0.8            /* chance that a pulse of a train is found at all */
+#define LEVEL_DEVIATION_DB 6.0  /* between neighbours: a beam that sweeps past changes it by up to 8 dB */
+#define STEADY_DEVIATION_DB 2.5 /* likewise, of a beam that does not sweep */
+#define LEVEL_GATE_DB 15        /* no neighbours beyond */
+#define LEAST_FIT 0.02          /* a stray that fits a member less is not looked at: beyond 17 dB */
+#define JUDGED_PULSES 64        /* the last ones of a chain decide whether it is a train */
 #define RATE_FLOOR 0.01     /* stray pulses a second that are expected everywhere; a judgement, no source */
 #define RATE_INTERVALS 20   /* longest intervals over which the rate of stray pulses is counted */
+#define SAMPLED 48          /* pulses before one, from which it is told how often such pulses come */
 #define COMPETING_STEPS 128 /* of COMPETING_STEP_DB, from 0 dB */
 #define COMPETING_STEP_DB 0.5
-#define UNLIKE -2.0 /* pulse_shape_likeness; a judgement, no source */
 #define HIDDEN UINT32_MAX
 
 /* A train is either steady or free in its rhythm; a chain is scored as both. */
@@ -40,7 +41,7 @@ struct link {
     double ln_ratio;    /* d of the last pair */
     double gain;        /* what the last pair added, at best */
     double score[2];    /* sum of ln densities, the rate of stray pulses left out, for either spread */
-    double ln_rates;    /* sum of ln of the common rate, to compare chains by */
+    double ln_rates;    /* sum of ln of the rate of pulses that look so, to compare chains by */
     double alike;       /* sum of the likenesses above 0 */
     double rank;        /* the better score and `alike` less ln_rates: which chains are kept */
 };
@@ -67,6 +68,13 @@ struct open_train {
     bool machine;
 };
 
+/* What came before the newest pulse and looks like it. */
+struct around {
+    uint32_t n;
+    double likeness[SAMPLED]; /* [n], the latest first; 0 of those far from its level */
+    double ln_rate;           /* of the rate at which such pulses come, by which chains are compared */
+};
+
 struct trains {
     struct call_class call_class;
     double rate_hz;
@@ -76,13 +84,13 @@ struct trains {
     double ln_m[MAX_STEP + 1];
     double ln_limit[MAX_STEP]; /* ln of an interval's ratio from which m + 1 steps are likelier than m */
     double ln_range;           /* ln of ln(max / min interval) */
-    double rate_above[LEVELS]; /* running, of pulses at each level or more, a second */
-    uint64_t n_pulses;         /* taken */
+    struct around around;
+    uint64_t n_pulses; /* taken */
     uint32_t n_trains;
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
-    uint32_t competing[COMPETING_STEPS]; /* strays by level, each step with those above it */
+    float competing[COMPETING_STEPS]; /* strays by level, by how well they could take a member's place */
     double sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
 };
@@ -102,10 +110,13 @@ static inline bool trains_remember(const struct trains *trains, uint64_t number)
     return number + RING > trains->n_pulses;
 }
 
-/* False when two pulses look too different to be of one animal: neither can take the other's place. */
-static inline bool trains_may_be_one(const struct node *a, const struct node *b)
+/* How well a stray pulse could stand in a chain beside a member: what the step from one to the other would
+ * cost the chain, as a factor. Strays are counted with the very weights with which pulses are tied, so that
+ * whatever levels and shapes the strays of a sea have, a step by chance has an expected ratio near 1. */
+double trains_fit_level(double difference_db, double spread_db);
+static inline double trains_fit_shape(const struct node *a, const struct node *b)
 {
-    return pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape) > UNLIKE;
+    return exp(fmin(0, pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape)));
 }
 
 /* Remembers a pulse and finds the chains that reach it, and how often pulses of its level come.
@@ -116,12 +127,10 @@ void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t 
 uint32_t trains_walk(struct trains *trains, uint64_t number, uint32_t link, uint64_t until, uint32_t most);
 /* Root mean square of d over the first n pulses that trains_walk gave. */
 double trains_walked_jitter(const struct trains *trains, uint32_t n);
-/* The step of level from which pulses compete with a pulse: one below its own. */
-int trains_level_index(const struct node *node);
 
 /* trains_chance.c: spares most chains the walk: false when a rate of stray pulses that is surely too low
  * would not do. */
-bool trains_may_be_certain(const struct trains *trains, const struct node *node, const struct link *link);
+bool trains_may_be_certain(const struct trains *trains, const struct link *link);
 /* How many of the chain in members[0..n), the last first and `least` or more, are most surely more than
  * chance; 0 where they are not. Uses competing[]. */
 uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least);

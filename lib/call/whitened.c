@@ -1,11 +1,13 @@
 /* Band power, weighted by parts. */
 #include "call/whitened.h"
-#include "dsp/lanes.h"
+#include "call/sliding.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define SPARE_BLOCKS 16 /* for which the row has room before its history is moved to its front */
+#define SPARE_BLOCKS                                                                                         \
+    16 /* for which the row has room before its history is moved to its front, at least, ... */
+#define SPARE_HISTORIES 3 /* ... or so many times the history */
 
 struct part {
     double share; /* of the band's width */
@@ -17,28 +19,10 @@ struct part {
 struct whitened {
     struct whitened_setup setup;
     struct part parts[BANDS_MAX_PARTS];
+    bool settled;
     uint32_t stride, at; /* of the row, and where in it the last block begins */
     float *row;          /* NULL for a band of one part */
 };
-
-double sum_slots(const float *power, uint32_t n)
-{
-    lanes first = {0}, second = {0};
-    uint32_t i = 0;
-    for (; i + 2 * LANES <= n; i += 2 * LANES) {
-        first += lanes_load(power + i);
-        second += lanes_load(power + i + LANES);
-    }
-    double sum = lanes_sum(first + second);
-    for (; i < n; i++)
-        sum += power[i];
-    return sum;
-}
-
-double window_power(const float *power, int64_t last, uint32_t window)
-{
-    return sum_slots(power + last + 1 - (int64_t)window, window) / window;
-}
 
 static const float *part_power(const struct whitened *whitened, uint32_t p)
 {
@@ -66,7 +50,7 @@ enum status whitened_create(const struct whitened_setup *setup, struct whitened 
     for (uint32_t p = 0; p < setup->parts.n; p++)
         whitened->parts[p].share /= width;
     if (setup->parts.n > 1) {
-        whitened->stride = setup->history_slots + SPARE_BLOCKS * setup->block_slots;
+        whitened->stride = (1 + SPARE_HISTORIES) * setup->history_slots + SPARE_BLOCKS * setup->block_slots;
         whitened->row = calloc(whitened->stride, sizeof *whitened->row);
         status = whitened->row ? status : STATUS_NO_MEMORY;
     }
@@ -85,6 +69,7 @@ void whitened_reset(struct whitened *whitened)
         window_median_reset(&whitened->parts[p].median);
         whitened->parts[p].weight = 1;
     }
+    whitened->settled = false;
     whitened->at = whitened->setup.history_slots;
     if (whitened->row)
         memset(whitened->row, 0, whitened->stride * sizeof *whitened->row);
@@ -129,6 +114,8 @@ void whitened_push(struct whitened *whitened)
                 setup->history_slots * sizeof *whitened->row);
         whitened->at = setup->history_slots;
     }
+    if (whitened->settled)
+        find_weights(whitened);
     weight_slots(whitened, 0, setup->block_slots);
 }
 
@@ -152,6 +139,7 @@ void whitened_settle(struct whitened *whitened, float *out)
         memcpy(windows, whitened->parts[p].settle, sizeof windows);
         window_median_settle(&whitened->parts[p].median, windows);
     }
+    whitened->settled = true;
     if (whitened->row)
         find_weights(whitened);
     memset(out, 0, WINDOW_MEDIAN_SETTLE * sizeof *out);
@@ -174,7 +162,6 @@ void whitened_follow(struct whitened *whitened, int64_t slot)
     for (uint32_t p = 0; p < whitened->setup.parts.n; p++)
         window_median_follow(&whitened->parts[p].median,
                              window_power(part_power(whitened, p), slot, whitened->setup.window));
-    find_weights(whitened);
 }
 
 double whitened_get_excess(const struct whitened *whitened, int64_t slot, double background_pa2)
@@ -192,7 +179,21 @@ double whitened_sum(const struct whitened *whitened, int64_t first, uint32_t n)
 {
     double sum = 0;
     for (uint32_t p = 0; p < whitened->setup.parts.n; p++)
-        sum += sum_slots(part_power(whitened, p) + first, n);
+        sum += short_sum(part_power(whitened, p) + first, n);
+    return sum;
+}
+
+double whitened_block_sum(const struct whitened *whitened)
+{
+    const struct whitened_setup *setup = &whitened->setup;
+    double sum = 0;
+    for (uint32_t p = 0; p < setup->parts.n; p++) {
+        const uint32_t band = setup->parts.bands[p], late = setup->parts.late_slots[p];
+        const float *power = bands_get_power(setup->bands, band);
+        sum += bands_get_block_sum(setup->bands, band);
+        if (late > 0)
+            sum += short_sum(power - late, late) - short_sum(power + setup->block_slots - late, late);
+    }
     return sum;
 }
 

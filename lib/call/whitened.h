@@ -43,6 +43,9 @@ double whitened_get_excess(const struct whitened *whitened, int64_t slot, double
 /* Sum of the power of n slots from `first` on, without weights. */
 double whitened_sum(const struct whitened *whitened, int64_t first, uint32_t n);
 
+/* The same of all slots of the block. */
+double whitened_block_sum(const struct whitened *whitened);
+
 /* The spectral density of the noise: through the middles of the parts, straight in the logarithms. */
 struct noise_density {
     uint32_t n;
@@ -54,10 +57,5 @@ double noise_density_at(const struct noise_density *density, double hz);
 /* From the first to the last middle, dB a decade; 0 where there is one. */
 double noise_density_slope(const struct noise_density *density);
 void whitened_destroy(struct whitened *whitened);
-
-/* Mean power of the window that ends with slot `last`. */
-double window_power(const float *power, int64_t last, uint32_t window);
-/* Sum of n slots. */
-double sum_slots(const float *power, uint32_t n);
 
 #endif

@@ -3,11 +3,9 @@
 #include <math.h>
 #include <stdlib.h>
 
-#define FLOOR_PA2 1e-30 /* below any background: digital silence */
-
 struct window_median window_median_of(const struct window_statistics *statistics, double step)
 {
-    return (struct window_median){.mean_pa2 = FLOOR_PA2,
+    return (struct window_median){.mean_pa2 = WINDOW_MEDIAN_FLOOR_PA2,
                                   .median_ratio = window_quantile(statistics, 0),
                                   .deviation = sqrt(2 / statistics->freedom),
                                   .steps = {1 / (1 + step), 1 + step}};
@@ -15,7 +13,7 @@ struct window_median window_median_of(const struct window_statistics *statistics
 
 void window_median_reset(struct window_median *median)
 {
-    median->mean_pa2 = FLOOR_PA2;
+    median->mean_pa2 = WINDOW_MEDIAN_FLOOR_PA2;
 }
 
 static int compare_floats(const void *a, const void *b)
@@ -27,14 +25,6 @@ static int compare_floats(const void *a, const void *b)
 void window_median_settle(struct window_median *median, float *windows)
 {
     qsort(windows, WINDOW_MEDIAN_SETTLE, sizeof *windows, compare_floats);
-    median->mean_pa2 = fmax(FLOOR_PA2, windows[WINDOW_MEDIAN_SETTLE / 2] / median->median_ratio);
-}
-
-/* Either side is as likely, so no branch hangs on it. */
-bool window_median_follow(struct window_median *median, double window_pa2)
-{
-    const bool above = window_pa2 > median->mean_pa2 * median->median_ratio;
-    const double mean_pa2 = median->mean_pa2 * median->steps[above];
-    median->mean_pa2 = mean_pa2 > FLOOR_PA2 ? mean_pa2 : FLOOR_PA2;
-    return above;
+    median->mean_pa2 =
+        fmax(WINDOW_MEDIAN_FLOOR_PA2, windows[WINDOW_MEDIAN_SETTLE / 2] / median->median_ratio);
 }

@@ -8,7 +8,7 @@
 
 #define MAX_STAGES 32
 #define LARGEST_PRIME 13
-#define TILE (2 * LANES)  /* partial sums of a dot product, made side by side */
+#define TILE WIDE_LANES   /* partial sums of a dot product, made side by side */
 #define PIECE 2048        /* input samples a stage takes at once */
 #define ATTENUATION_DB 90 /* of each stage: leaves 10 dB for the sum of a chain's stages */
 #define PASS_BAND_END 0.4 /* of the output rate */
@@ -162,61 +162,52 @@ void decimator_reset(struct decimator *decimator)
         reset_stage(&decimator->stages[i]);
 }
 
-static float dot(const float *a, const float *b, uint32_t n)
+LANES_WIDE static uint32_t run_stage(const struct stage *stage, uint32_t n, float *out)
 {
-    lanes first = {0}, second = {0};
-    for (uint32_t i = 0; i < n; i += TILE) {
-        first += lanes_load(a + i) * lanes_load(b + i);
-        second += lanes_load(a + i + LANES) * lanes_load(b + i + LANES);
+    uint32_t n_out = 0;
+    for (uint32_t at = stage->phase; at < n; at += stage->factor) {
+        wide_lanes sums = {0}, x, tap;
+        for (uint32_t i = 0; i < stage->n_taps; i += WIDE_LANES) {
+            wide_load(&x, stage->buffer + at + i);
+            wide_load(&tap, stage->taps + i);
+            sums += x * tap;
+        }
+        const float even = (sums[0] + sums[4]) + (sums[2] + sums[6]);
+        out[n_out++] = even + ((sums[1] + sums[5]) + (sums[3] + sums[7]));
     }
-    first += second;
-    return (first[0] + first[1]) + (first[2] + first[3]);
+    return n_out;
 }
 
-static inline lanes pair(const float *early, const float *late)
-{
-    return lanes_load(early) + lanes_load(late);
-}
-
-/* Outputs 0 to 15 of a half-band stage: four vectors share each tap. */
-static void make_sixteen(const struct stage *stage, const float *even, const float *odd, float *out)
-{
-    const float *early = even + stage->n_taps - 1, *late = even + stage->n_taps;
-    lanes a = 0.5F * lanes_load(odd), b = 0.5F * lanes_load(odd + LANES);
-    lanes c = 0.5F * lanes_load(odd + 2 * LANES), d = 0.5F * lanes_load(odd + 3 * LANES);
-    for (uint32_t k = 0; k < stage->n_taps; k++, early--, late++) {
-        const lanes tap = lanes_all(stage->taps[k]);
-        a += tap * pair(early, late);
-        b += tap * pair(early + LANES, late + LANES);
-        c += tap * pair(early + 2 * LANES, late + 2 * LANES);
-        d += tap * pair(early + 3 * LANES, late + 3 * LANES);
-    }
-    lanes_store(out, a);
-    lanes_store(out + LANES, b);
-    lanes_store(out + 2 * LANES, c);
-    lanes_store(out + 3 * LANES, d);
-}
+#define ROW (2 * WIDE_LANES) /* outputs of a half-band stage that share the loading of each tap */
 
 /* Output i of a half-band stage: even and odd point to the oldest samples that output 0 needs. The order of
- * the sum is the same for every output, alone or in a tile. */
-static void run_half_band(const struct stage *stage, const float *even, const float *odd, uint32_t n,
-                          float *out)
+ * the sum is the same for every output, alone or in a row. */
+LANES_WIDE static void run_half_band(const float *taps, uint32_t n_taps, const float *even, const float *odd,
+                                     uint32_t n, float *out)
 {
-    const uint32_t n_taps = stage->n_taps;
     uint32_t i = 0;
-    for (; i + 4 * LANES <= n; i += 4 * LANES)
-        make_sixteen(stage, even + i, odd + i, out + i);
-    for (; i + LANES <= n; i += LANES) {
-        lanes sum = 0.5F * lanes_load(odd + i);
-        for (uint32_t k = 0; k < n_taps; k++)
-            sum +=
-                stage->taps[k] * (lanes_load(even + i + n_taps - 1 - k) + lanes_load(even + i + n_taps + k));
-        lanes_store(out + i, sum);
+    for (; i + ROW <= n; i += ROW) {
+        const float *before = even + i + n_taps - 1, *after = even + i + n_taps;
+        wide_lanes first, second, early, late;
+        wide_load(&first, odd + i);
+        wide_load(&second, odd + i + WIDE_LANES);
+        first *= 0.5F;
+        second *= 0.5F;
+        for (uint32_t k = 0; k < n_taps; k++, before--, after++) {
+            wide_load(&early, before);
+            wide_load(&late, after);
+            first += taps[k] * (early + late);
+            wide_load(&early, before + WIDE_LANES);
+            wide_load(&late, after + WIDE_LANES);
+            second += taps[k] * (early + late);
+        }
+        wide_store(out + i, &first);
+        wide_store(out + i + WIDE_LANES, &second);
     }
     for (; i < n; i++) {
         float sum = 0.5F * odd[i];
         for (uint32_t k = 0; k < n_taps; k++)
-            sum += stage->taps[k] * (even[i + n_taps - 1 - k] + even[i + n_taps + k]);
+            sum += taps[k] * (even[i + n_taps - 1 - k] + even[i + n_taps + k]);
         out[i] = sum;
     }
 }
@@ -246,7 +237,7 @@ static uint32_t push_half_band(struct stage *stage, const float *samples, uint32
         deal(samples, n, even, odd);
     else
         deal(samples, n, odd, even);
-    run_half_band(stage, stage->buffer, stage->odd, n_even, out);
+    run_half_band(stage->taps, stage->n_taps, stage->buffer, stage->odd, n_even, out);
     stage->n_odd += n_odd - n_even;
     memmove(stage->buffer, stage->buffer + n_even, stage->n_held * sizeof *stage->buffer);
     memmove(stage->odd, stage->odd + n_even, stage->n_odd * sizeof *stage->odd);
@@ -258,10 +249,8 @@ static uint32_t push_half_band(struct stage *stage, const float *samples, uint32
 static uint32_t push_stage(struct stage *stage, const float *samples, uint32_t n, float *out)
 {
     memcpy(stage->buffer + stage->n_held, samples, n * sizeof *samples);
-    uint32_t n_out = 0, i = stage->phase;
-    for (; i < n; i += stage->factor)
-        out[n_out++] = dot(stage->buffer + i, stage->taps, stage->n_taps);
-    stage->phase = i - n;
+    const uint32_t n_out = run_stage(stage, n, out);
+    stage->phase = stage->phase + n_out * stage->factor - n;
     memmove(stage->buffer, stage->buffer + n, stage->n_held * sizeof *stage->buffer);
     return n_out;
 }

@@ -46,7 +46,11 @@ static double covered_frames(const struct covers *covers, const struct found_cal
                  sound->high_hz >= call->low_hz && sound->low_hz <= call->high_hz;
     if (!edges && (!shares_band(sound, call) || !shares_rhythm(sound, call)))
         return 0;
-    return fmax(0, fmin(sound->end_frame, call->end_frame) - fmax(sound->start_frame, call->start_frame));
+    /* A tone is told to within its window: one that only touches the sound is full of it. */
+    double window =
+        call->n_pulses == 0 ? covers->classes[call->class_index].tone.window_s * covers->rate_hz : 0;
+    return fmax(0, fmin(sound->end_frame + window, call->end_frame) -
+                       fmax(sound->start_frame - window, call->start_frame));
 }
 
 static bool is_enough(double frames, const struct found_call *call)

@@ -96,15 +96,24 @@ static void take_sound_of_none(struct listen *listen, const struct joined_call *
     memcpy(call->against, against, n_against * sizeof against[0]);
 }
 
+/* What an animal's call can say at most, where it is heard. */
+static double most_evidence(struct listen *listen, const struct found_call *found)
+{
+    const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
+    double most = song_evidence(&listen->song, class, found);
+    return struck_begins(&listen->struck, class, found) ? fmin(most, STRUCK_EVIDENCE) : most;
+}
+
 static void take_joined(void *context, const struct joined_call *joined)
 {
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
-    bool animal = listen->setup.catalogue->classes[found->class_index].animal;
+    const struct catalogue *catalogue = listen->setup.catalogue;
+    bool animal = catalogue->classes[found->class_index].animal;
     if (animal && is_hidden(listen, found))
         return;
     double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
-    if (animal && evidence <= 0 && listen->setup.catalogue->classes[found->class_index].evidence > 0) {
+    if (animal && evidence <= 0 && catalogue->classes[found->class_index].evidence > 0) {
         listen->n_covered[found->class_index]++;
         return;
     }
@@ -114,7 +123,7 @@ static void take_joined(void *context, const struct joined_call *joined)
         return;
     }
     struct event *event = add_call(listen, joined);
-    event->as.call.evidence = evidence;
+    event->as.call.evidence = fmin(evidence, most_evidence(listen, found));
     covers_keep_call(&listen->covers, found, event->counter);
 }
 
@@ -147,6 +156,8 @@ enum status listen_create_calls(struct listen *listen)
             listen->second_channel = i;
     for (uint32_t c = 0; c < catalogue->n_classes; c++)
         any = any || catalogue->classes[c].sound.manner != MANNER_NONE;
+    song_reset(&listen->song, setup->rate_hz);
+    struck_reset(&listen->struck, setup->rate_hz);
     covers_reset(&listen->covers, catalogue->classes, catalogue->n_classes, setup->rate_hz);
     alone_reset(&listen->alone, catalogue->classes, catalogue->n_classes, setup->rate_hz);
     if (listen->strip_channel == 0 || !any)
@@ -173,4 +184,5 @@ void listen_push_others(struct listen *listen, uint32_t n_frames)
 void listen_take_alone(struct listen *listen, const struct found_impulse *found)
 {
     alone_take(&listen->alone, found);
+    struck_take(&listen->struck, found->onset_frame);
 }

@@ -10,7 +10,9 @@
 #include "listen/joiner.h"
 #include "listen/listen.h"
 #include "listen/measuring.h"
+#include "listen/song.h"
 #include "listen/strips.h"
+#include "listen/struck.h"
 
 #define LISTEN_MAX_PENDING 512
 
@@ -27,6 +29,8 @@ struct listen {
     uint64_t n_found[CATALOGUE_MAX_CLASSES];
     uint64_t n_impulses;
     struct joiner joiner;
+    struct song song;
+    struct struck struck;
     struct covers covers;
     struct others *others;   /* NULL where no channel listens */
     uint32_t second_channel; /* the second that listens; 0: none */

@@ -32,6 +32,7 @@ struct render {
     uint64_t tile; /* what `samples` holds */
     bool has_tile;
     float *samples; /* [hydrophones][tile_frames], full-scale units */
+    float *alike;   /* [tile_frames], Pa: what all hydrophones have at once */
 };
 
 static void reset_source(struct source *source)
@@ -101,6 +102,7 @@ void render_destroy(struct render *render)
         free(render->sources[i].under_way);
     free(render->sources);
     free(render->samples);
+    free(render->alike);
     free(render);
 }
 
@@ -110,7 +112,8 @@ static enum status build(struct render *render)
     render->sea = path_sea_of(scene);
     render->tile_frames = noise_tile_frames(scene->rate_hz);
     render->samples = calloc((size_t)render->tile_frames * scene->n_hydrophones, sizeof *render->samples);
-    if (!render->samples)
+    render->alike = calloc(render->tile_frames, sizeof *render->alike);
+    if (!render->samples || !render->alike)
         return STATUS_NO_MEMORY;
     enum status status = STATUS_OK;
     if (scene->sea.ambient)
@@ -221,6 +224,18 @@ static void convert(const struct calibration *calibration, float *samples, uint3
     }
 }
 
+/* What is under way and comes by the sea and by each hydrophone's own way, or alike to all. */
+static void add_under_way(const struct render *render, bool alike, uint32_t channel, float *out)
+{
+    for (uint32_t s = 0; s < render->n_sources; s++)
+        for (uint32_t i = 0; i < render->sources[s].n_under_way; i++) {
+            const struct emission *emission = &render->sources[s].under_way[i];
+            if ((emission->reach == REACH_ALIKE) == alike)
+                path_add(&render->sea, emission, channel, render->tile * render->tile_frames,
+                         render->tile_frames, out);
+        }
+}
+
 static void make_tile(struct render *render, uint64_t tile)
 {
     uint32_t n = render->tile_frames;
@@ -234,14 +249,14 @@ static void make_tile(struct render *render, uint64_t tile)
             reset_source(&render->sources[s]);
         update_source(render, &render->sources[s], start_s, end_s);
     }
+    memset(render->alike, 0, n * sizeof *render->alike);
+    add_under_way(render, true, 0, render->alike);
     for (uint32_t channel = 0; channel < render->scene.n_hydrophones; channel++) {
         float *out = render->samples + (size_t)channel * n;
-        memset(out, 0, n * sizeof *out);
+        memcpy(out, render->alike, n * sizeof *out);
         if (render->noise)
             noise_add(render->noise, tile, channel, out);
-        for (uint32_t s = 0; s < render->n_sources; s++)
-            for (uint32_t i = 0; i < render->sources[s].n_under_way; i++)
-                path_add(&render->sea, &render->sources[s].under_way[i], channel, tile * n, n, out);
+        add_under_way(render, false, channel, out);
         add_ships(render, channel, out);
         convert(&render->scene.hydrophones[channel].calibration, out, n);
     }

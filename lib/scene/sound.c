@@ -2,6 +2,7 @@
  * that is exact at the first sample and drifts by less than 1e-10 over a tile. */
 #include "scene/sound.h"
 #include "scene/sound_noise.h"
+#include "scene/sound_tone.h"
 #include <math.h>
 #include <stdbool.h>
 
@@ -10,7 +11,6 @@
 #define GAMMA_REACH 16.0 /* widths: 3e-5 of the peak */
 #define DAMPED_REACH 9.0 /* widths: 1e-4 */
 #define DECAY_REACH 7.0  /* time constants of noise: 1e-3 */
-#define GAP_EDGE_S 0.005
 
 double sound_part_hz(const struct sound *sound, uint32_t k)
 {
@@ -107,48 +107,6 @@ void sound_measure_length(struct sound *sound)
     for (uint32_t k = 0; k < sound->n_parts; k++)
         length_s = fmax(length_s, sound->parts[k].delay_s + part_reach_s(sound, &sound->parts[k]));
     sound->length_s = length_s;
-}
-
-/* What gaps leave at a time; their edges are cosines. */
-static double gap_at(const struct sound *sound, double t)
-{
-    double left = 1;
-    for (int i = 0; i < SOUND_MAX_GAPS; i++) {
-        double outside = fmax(sound->gap_s[i] - t, t - sound->gap_s[i] - sound->gap_length_s[i]);
-        if (sound->gap_length_s[i] > 0 && outside < GAP_EDGE_S)
-            left *= outside <= 0 ? 0 : 0.5 - 0.5 * cos(TWO_PI / 2 * outside / GAP_EDGE_S);
-    }
-    return left;
-}
-
-static double tone_envelope(const struct sound *sound, double t)
-{
-    double envelope = sound_window_at(t / sound->length_s, sound->taper);
-    if (sound->pulse_rate_hz > 0) {
-        double swell = 0.5 - 0.5 * cos(TWO_PI * sound->pulse_rate_hz * t);
-        envelope *= swell * swell;
-    }
-    if (sound->decay_s > 0)
-        envelope *= exp(-t / sound->decay_s);
-    return envelope * sound_swell_at(sound, t + sound->origin_s) * gap_at(sound, t);
-}
-
-static void add_tone(const struct sound *sound, const double *gain, double t, double scale, double phase,
-                     float *out)
-{
-    double envelope = scale * tone_envelope(sound, t);
-    if (envelope == 0)
-        return;
-    double cycles = contour_cycles(&sound->contour, t + sound->origin_s) + phase;
-    /* cos(k x) = 2 cos(x) cos((k - 1) x) - cos((k - 2) x) */
-    double first = cos(TWO_PI * (cycles - floor(cycles))), before = 1, present = first, sum = 0;
-    for (uint32_t k = 0; k < sound->n_parts; k++) {
-        sum += sound->parts[k].amplitude * gain[k] * present;
-        double next = 2 * first * present - before;
-        before = present;
-        present = next;
-    }
-    *out += (float)(envelope * sum);
 }
 
 static double chip_at(const struct sound *sound, const struct sound_part *part, double u)
@@ -253,13 +211,9 @@ void sound_add(const struct sound *sound, uint64_t variant, const double *gain, 
             add_part(sound, k, gain[k], run, n, out);
         return;
     }
-    double phase = (double)variant * 0.6180339887498949; /* the golden ratio keeps any two apart */
     uint32_t from, to;
     sample_range(0, sound->length_s, t0, dt, n, &from, &to);
-    for (uint32_t i = from; i < to; i++) {
-        double t = t0 + i * dt;
-        add_tone(sound, gain, t, scale0 + run.scale_slope * t, phase, &out[i]);
-    }
+    sound_tone_add(sound, variant, gain, scale0, run.scale_slope, t0, dt, from, to, out);
 }
 
 void sound_scale(struct sound *sound, double factor)
@@ -305,7 +259,7 @@ void sound_normalize_mean_square(struct sound *sound)
     const int n = 4096;
     double envelope2 = 0, parts2 = 0;
     for (int i = 0; i < n; i++) {
-        double envelope = tone_envelope(sound, (i + 0.5) / n * sound->length_s);
+        double envelope = sound_tone_envelope_at(sound, (i + 0.5) / n * sound->length_s);
         envelope2 += envelope * envelope;
     }
     for (uint32_t k = 0; k < sound->n_parts; k++)

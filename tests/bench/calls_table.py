@@ -3,7 +3,8 @@
 
 calls_table.py FOLDER [DOCUMENT]: prints it as Markdown, writes FOLDER/table.json and, into the document, what it
 printed in place of what stands between its two markers. Pieces of another catalogue than the newest piece's are left
-out, and said to be. A row: what, of what, figure, goal, whether it is met, number of trials, seed."""
+out, and said to be. A row: what, of what, figure, goal, whether it is met, number of trials, seed, and of what is no animal how much of it
+was recognised."""
 import json
 import math
 import os
@@ -39,8 +40,8 @@ class Table:
     def __init__(self):
         self.rows = []
 
-    def add(self, what, of, figure, goal="", met=None, trials="", seed=""):
-        self.rows.append({"what": what, "of": of, "figure": figure, "goal": goal, "trials": str(trials),
+    def add(self, what, of, figure, goal="", met=None, trials="", seed="", heard=""):
+        self.rows.append({"what": what, "of": of, "figure": figure, "goal": goal, "trials": str(trials), "heard": heard,
                           "met": "" if met is None else "yes" if met else "**no**", "seed": str(seed)})
 
 
@@ -152,26 +153,49 @@ def upper(n):
     return stats.chi2.ppf(0.95, 2 * n + 2) / 2
 
 
-def confounders(table, rows, seed):
+def recognised(sums):
+    """Share of the sounds that are truly there, and plain, that were given as what they are."""
+    if not sums["as"]:
+        return "no class"
+    if not sums["present"]:
+        return "none plain"
+    return "%.1f %% of %s (%s)" % (100 * sums["recognised"] / sums["present"],
+                                   "%.1f h" % (sums["present"] / 3600) if sums["lasts"] else "%d" % sums["present"],
+                                   sums["as"])
+
+
+def pooled(rows):
     sounds = {}
     for row in rows:
-        sum_ = sounds.setdefault(row["sound"], {"hours": 0, "looks": 0, "acts": 0, "calls": {}, "rate": row["rate_hz"]})
-        for key in ("hours", "looks", "acts"):
-            sum_[key] += row[key]
+        sums = sounds.setdefault(row["sound"], {"hours": 0, "looks": 0, "acts": 0, "calls": {}, "render_s": 0, "listen_s": 0,
+                                                "present": 0, "recognised": 0, "as": "", "lasts": False})
+        for key in ("hours", "looks", "acts", "render_s", "listen_s"):
+            sums[key] += row[key]
         for name, n in row["calls"].items():
-            sum_["calls"][name] = sum_["calls"].get(name, 0) + n
-    for sound, sum_ in list(sounds.items()) + [("all together", None)]:
-        if sum_ is None:
-            sum_ = {k: sum(s[k] for s in sounds.values()) for k in ("hours", "looks", "acts")}
-            sum_["calls"] = {}
-        hours, looks, acts = sum_["hours"], sum_["looks"], sum_["acts"]
-        made = ", ".join("%d %s" % (n, name) for name, n in sorted(sum_["calls"].items(), key=lambda i: -i[1]))
+            sums["calls"][name] = sums["calls"].get(name, 0) + n
+        heard = row.get("recognised")
+        if heard:
+            sums.update({"as": heard["as"], "lasts": heard["lasts"]})
+            for key in ("present", "recognised"):
+                sums[key] += heard[key]
+    return sounds
+
+
+def confounders(table, rows, seed):
+    sounds = pooled(rows)
+    every = {k: sum(s[k] for s in sounds.values()) for k in ("hours", "looks", "acts", "render_s", "listen_s")}
+    for sound, sums in list(sounds.items()) + [("all together", every)]:
+        hours, looks, acts = sums["hours"], sums["looks"], sums["acts"]
+        made = ", ".join("%d %s" % (n, name) for name, n in sorted(sums.get("calls", {}).items(), key=lambda i: -i[1]))
         table.add("confounder" if sound != "all together" else "confounders", sound,
                   "act %.2f a day (at most %.2f with 95 %%), look %.2f an hour (at most %.2f)%s" % (
                       24 * acts / hours, 24 * upper(acts) / hours, looks / hours, upper(looks) / hours,
                       "; calls: " + made if made else ""),
                   "act 0.4 a day, look 1 an hour", 24 * acts / hours <= 0.4 and looks / hours <= 1,
-                  "%.2f h" % hours, seed)
+                  "%.2f h" % hours, seed, recognised(sums) if "as" in sums else "")
+    spent_s = every["render_s"] + every["listen_s"]
+    table.add("confounders", "time", "%.2f simulated hours a minute of processor (%.0f %% of it is making the sound)" % (
+        every["hours"] / spent_s * 60, 100 * every["render_s"] / spent_s), "", None, "%.2f h" % every["hours"], seed)
 
 
 def costs(table, piece):
@@ -220,14 +244,14 @@ def main():
                        ("seas", delays), ("costs", costs)):
         if name in pieces:
             rows(table, pieces[name])
-    pooled = pieces.get("confounders", {"rows": []})["rows"] + pieces.get("pool", {"rows": []})["rows"]
-    if pooled:
+    rows = pieces.get("confounders", {"rows": []})["rows"] + pieces.get("pool", {"rows": []})["rows"]
+    if rows:
         seeds = sorted({str(p["seed"]) for p in [pieces[k] for k in ("confounders",) if k in pieces]} |
                        {str(r["seed"]) for r in pieces.get("pool", {"rows": []})["rows"]})
-        confounders(table, pooled, seeds[0] + (" and %d more" % (len(seeds) - 1) if len(seeds) > 1 else ""))
+        confounders(table, rows, seeds[0] + (" and %d more" % (len(seeds) - 1) if len(seeds) > 1 else ""))
     lines = ["Catalogue (SHA-256 of the files of config/calls in byte order): `%s`." % digest, "",
-             "| what | of what | figure | goal | met | trials | seed |", "|---|---|---|---|---|---|---|"]
-    lines += ["| %(what)s | %(of)s | %(figure)s | %(goal)s | %(met)s | %(trials)s | %(seed)s |" % r for r in table.rows]
+             "| what | of what | figure | goal | met | trials | seed | recognised |", "|---|---|---|---|---|---|---|---|"]
+    lines += ["| %(what)s | %(of)s | %(figure)s | %(goal)s | %(met)s | %(trials)s | %(seed)s | %(heard)s |" % r for r in table.rows]
     lines += ["", "What each class's calls truly were, in seas and confounders (counts of calls):", ""] + confusion(pieces)
     if stale:
         lines += ["", "Left out, of another catalogue: " + ", ".join(stale) + "."]

@@ -104,7 +104,7 @@ static void take_pulse(void *context, const struct pulse *pulse)
 
 static double noise_rate_of(const void *context, double snr)
 {
-    return trigger_get_noise_rate(context, snr);
+    return pulse_search_get_noise_rate(context, snr);
 }
 
 /* How one whale's clicks sound: from off the axis, five pulses of alternating sign whose distance is the time
@@ -148,12 +148,13 @@ static void add_coda(struct scene *scene, const struct coda *coda, int whale, do
 }
 
 /* Gives how many clicks are in a train of which their own whale made most. */
-static int hear_pair(struct bands *bands, struct trigger *trigger, const struct coda *a, const struct coda *b,
-                     bool one_pulse, struct random *random, int *out_clicks, int *out_in_trains)
+static int hear_pair(struct bands *bands, struct pulse_search *search, struct trigger *trigger,
+                     const struct coda *a, const struct coda *b, bool one_pulse, struct random *random,
+                     int *out_clicks, int *out_in_trains)
 {
     static struct scene scene;
     memset(&scene, 0, sizeof scene);
-    struct noise_rate noise = {noise_rate_of, trigger};
+    struct noise_rate noise = {noise_rate_of, search};
     assert_int_equal(codas_create(&coda_class, RATE, noise, &scene.trains), STATUS_OK);
     double end_s = fmax(a->start_s + a->times_s[a->n - 1], b->start_s + b->times_s[b->n - 1]) - a->start_s;
     uint32_t block = 64 * SLOT;
@@ -166,11 +167,13 @@ static int hear_pair(struct bands *bands, struct trigger *trigger, const struct 
     add_coda(&scene, a, 0, a->start_s, &first, x, n, random);
     add_coda(&scene, b, 1, a->start_s, &second, x, n, random);
     bands_reset(bands);
+    pulse_search_reset(search);
     trigger_reset(trigger);
     struct pulse_sink pulse_sink = {take_pulse, &scene};
     struct train_sink train_sink = {take_train, &scene};
     for (size_t at = 0; at < n; at += block) {
         bands_push(bands, x + at);
+        pulse_search_push(search);
         trigger_push(trigger, &pulse_sink, scene.rejections);
         codas_advance(scene.trains, trigger_get_known(trigger), &train_sink, scene.rejections);
     }
@@ -202,19 +205,21 @@ static void hear_all(bool one_pulse, double least)
         {2 * coda_class.low_hz, coda_class.high_hz},
         {coda_class.train.guard_low_hz, coda_class.train.guard_high_hz}};
     struct bands *bands;
+    struct pulse_search *search;
     struct trigger *trigger;
     uint32_t history = trigger_get_history(&coda_class, RATE, SLOT);
     assert_int_equal(bands_create(RATE, edges, 3, SLOT, 64, history, &bands), STATUS_OK);
-    struct trigger_setup setup = {.call_class = &coda_class,
-                                  .bands = bands,
-                                  .band = {.n = 2, .bands = {0, 1}},
-                                  .guards = {{.n = 1, .bands = {2}}},
-                                  .rate_hz = RATE,
-                                  .slot_frames = SLOT,
-                                  .block_slots = 64,
-                                  .history_slots = history,
-                                  .frames_per_frame = 1};
-    assert_int_equal(trigger_create(&setup, &trigger), STATUS_OK);
+    struct search_setup setup = {.call_class = &coda_class,
+                                 .bands = bands,
+                                 .band = {.n = 2, .bands = {0, 1}},
+                                 .guards = {{.n = 1, .bands = {2}}},
+                                 .rate_hz = RATE,
+                                 .slot_frames = SLOT,
+                                 .block_slots = 64,
+                                 .history_slots = history,
+                                 .frames_per_frame = 1};
+    assert_int_equal(pulse_search_create(&setup, &search), STATUS_OK);
+    assert_int_equal(trigger_create(&coda_class, search, &trigger), STATUS_OK);
     struct random random;
     random_reset(&random, 2024);
     int every = test_length() == TEST_LONG ? 1 : test_length() == TEST_CHECK ? 3 : 20, k = 0;
@@ -225,10 +230,11 @@ static void hear_all(bool one_pulse, double least)
             if (i == j || !overlap || a->whale == b->whale || strcmp(a->recording, b->recording) != 0 ||
                 k++ % every)
                 continue;
-            right += hear_pair(bands, trigger, a, b, one_pulse, &random, &clicks, &in_trains);
+            right += hear_pair(bands, search, trigger, a, b, one_pulse, &random, &clicks, &in_trains);
             n_pairs++;
         }
     trigger_destroy(trigger);
+    pulse_search_destroy(search);
     bands_destroy(bands);
     printf(
         "# figure codas, %s: %d pairs, %d clicks: %.1f %% in a train, %.1f %% in a train of their own whale "

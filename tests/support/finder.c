@@ -20,19 +20,21 @@ static enum status create_parts(struct finder *finder, const struct call_class *
         edges[n++] = (struct band_edges){middle, call_class->high_hz};
     if (guarded)
         edges[n++] = (struct band_edges){shape->guard_low_hz, shape->guard_high_hz};
-    struct trigger_setup setup = {.call_class = call_class,
-                                  .band = {.n = wide ? 2 : 1, .bands = {0, 1}},
-                                  .guards = {{.n = guarded, .bands = {n - 1}}},
-                                  .history_slots = trigger_get_history(call_class, rate_hz, slot),
-                                  .rate_hz = rate_hz,
-                                  .slot_frames = slot,
-                                  .block_slots = BLOCK_SLOTS,
-                                  .frames_per_frame = 1};
+    struct search_setup setup = {.call_class = call_class,
+                                 .band = {.n = wide ? 2 : 1, .bands = {0, 1}},
+                                 .guards = {{.n = guarded, .bands = {n - 1}}},
+                                 .history_slots = trigger_get_history(call_class, rate_hz, slot),
+                                 .rate_hz = rate_hz,
+                                 .slot_frames = slot,
+                                 .block_slots = BLOCK_SLOTS,
+                                 .frames_per_frame = 1};
     enum status status =
         bands_create(rate_hz, edges, n, slot, BLOCK_SLOTS, setup.history_slots, &finder->bands);
     setup.bands = finder->bands;
     if (status == STATUS_OK)
-        status = trigger_create(&setup, &finder->trigger);
+        status = pulse_search_create(&setup, &finder->search);
+    if (status == STATUS_OK)
+        status = trigger_create(call_class, finder->search, &finder->trigger);
     finder->block_frames = BLOCK_SLOTS * slot;
     finder->block = calloc(finder->block_frames, sizeof(float));
     return finder->block ? status : STATUS_NO_MEMORY;
@@ -56,6 +58,7 @@ void finder_destroy(struct finder *finder)
     if (!finder)
         return;
     trigger_destroy(finder->trigger);
+    pulse_search_destroy(finder->search);
     bands_destroy(finder->bands);
     free(finder->block);
     free(finder);
@@ -70,6 +73,7 @@ void finder_noise(struct finder *finder)
 void finder_push(struct finder *finder)
 {
     bands_push(finder->bands, finder->block);
+    pulse_search_push(finder->search);
     trigger_push(finder->trigger, &finder->sink, finder->rejections);
     finder->n_frames += finder->block_frames;
 }

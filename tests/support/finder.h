@@ -12,6 +12,7 @@
 
 struct finder {
     struct bands *bands;
+    struct pulse_search *search;
     struct trigger *trigger;
     float *block;
     uint32_t block_frames;

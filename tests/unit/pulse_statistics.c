@@ -117,7 +117,7 @@ static void false_pulses_are_as_frequent_as_stated(void **state)
             finder_push(finder);
             n_sums += finder->n_frames > cases[c].rate_hz; /* stated anew as the background is followed */
             for (int i = 0; i < STEPS && n_sums > 0; i++)
-                sums[i] += trigger_get_noise_rate(finder->trigger, counts.snr[i]);
+                sums[i] += pulse_search_get_noise_rate(finder->search, counts.snr[i]);
         }
         for (int i = 0; i < STEPS; i++) {
             double stated = sums[i] / n_sums;
@@ -149,12 +149,12 @@ static void hit(void *context, const struct pulse *pulse)
 }
 
 /* The snr at which the finder states one false pulse an hour. */
-static double hourly_snr(const struct trigger *trigger)
+static double hourly_snr(const struct pulse_search *search)
 {
     double low = 1, high = 100;
     for (int i = 0; i < 60; i++) {
         double middle = (low + high) / 2;
-        *(trigger_get_noise_rate(trigger, middle) > 1.0 / 3600 ? &low : &high) = middle;
+        *(pulse_search_get_noise_rate(search, middle) > 1.0 / 3600 ? &low : &high) = middle;
     }
     return low;
 }
@@ -165,7 +165,7 @@ static double detected_share(const struct call_class *call_class, double rate_hz
     struct pulse_sink sink = {hit, &hits};
     struct finder *finder = finder_create(call_class, rate_hz, 77, sink);
     assert_non_null(finder);
-    hits.snr = hourly_snr(finder->trigger);
+    hits.snr = hourly_snr(finder->search);
     for (int i = 0; i < 200; i++) {
         finder_noise(finder);
         finder_push(finder);

@@ -14,6 +14,8 @@
 #include <stdbool.h>
 #include <stdint.h>
 
+#define CALLS_STRETCH_S 1200.0 /* a confounder's sea is another one after so long */
+
 struct calls_setup {
     const struct catalogue *catalogue; /* borrowed */
     uint64_t seed;

@@ -6,9 +6,9 @@
 #include <stdlib.h>
 #include <string.h>
 
-struct scene_hydrophone chain_hydrophone(void)
+struct scene_hydrophone chain_hydrophone(uint32_t channel)
 {
-    return (struct scene_hydrophone){.place = {.x_m = 0, .y_m = 0, .z_m = 12},
+    return (struct scene_hydrophone){.place = {.x_m = 8.0 * channel, .y_m = 6.0 * channel, .z_m = 12},
                                      .calibration = {.known = true,
                                                      .sensitivity_db = -170,
                                                      .full_scale_v = 10,
@@ -49,12 +49,25 @@ static void keep_call(struct chain *chain, const struct event *event)
     chain->calls[chain->n_calls++] =
         (struct chain_call){.class_index = class_named(chain->catalogue, call->class_name),
                             .n_pulses = call->n_pulses,
+                            .n_sounds = call->n_sounds,
                             .group = call->group,
                             .form = call->form,
                             .start_s = time_to_s(call->start_ns),
                             .end_s = time_to_s(call->end_ns),
+                            .low_hz = call->low_hz,
+                            .high_hz = call->high_hz,
+                            .snr_db = call->snr_db,
                             .delay_s = time_to_s(event->known_ns - call->end_ns),
                             .certainty = call->certainty};
+}
+
+static void keep_impulse(struct chain *chain, const struct event *event)
+{
+    void *impulses = chain->impulses_s;
+    if (!make_room(&impulses, &chain->impulses_room, chain->n_impulses, 1, sizeof *chain->impulses_s))
+        return;
+    chain->impulses_s = impulses;
+    chain->impulses_s[chain->n_impulses++] = time_to_s(event->as.impulse.time_ns);
 }
 
 static void keep_train(void *context, const struct found_call *found)
@@ -104,7 +117,9 @@ static void take_event(void *context, const struct event *event)
     struct chain *chain = context;
     if (event->kind == EVENT_CALL)
         keep_call(chain, event);
-    if (event->kind == EVENT_UNHEARD && event->as.unheard.cause == UNHEARD_OWN_SOURCE)
+    if (event->kind == EVENT_IMPULSE && event->as.impulse.channel == 1)
+        keep_impulse(chain, event);
+    if (chain->second && event->kind == EVENT_UNHEARD && event->as.unheard.cause == UNHEARD_OWN_SOURCE)
         pulses_hide(chain->second, time_to_s(event->as.unheard.start_ns) * chain->rate_hz,
                     time_to_s(event->as.unheard.end_ns) * chain->rate_hz, event->as.unheard.low_hz,
                     event->as.unheard.high_hz);
@@ -115,25 +130,29 @@ static void take_block(void *context, const struct block *block)
 {
     struct chain *chain = context;
     listen_push(chain->listen, block, &(struct event_sink){take_event, chain});
+    if (!chain->second)
+        return;
     for (uint32_t i = 0; i < block->n_frames; i++)
         chain->pascals[i] = (float)chain->pa_per_unit * block->samples[i];
     pulses_push(chain->second, chain->pascals, block->n_frames, &(struct found_sink){keep_train, chain});
 }
 
-bool chain_create(struct chain *chain, const struct catalogue *catalogue, double rate_hz)
+bool chain_create(struct chain *chain, const struct catalogue *catalogue, double rate_hz, uint32_t n_channels,
+                  bool arrivals)
 {
     struct problems problems = {0};
-    const struct calibration calibration = chain_hydrophone().calibration;
+    const struct calibration calibration = chain_hydrophone(0).calibration;
     *chain = (struct chain){.catalogue = catalogue,
                             .rate_hz = rate_hz,
+                            .n_channels = n_channels,
                             .pa_per_unit = calibration_pa_per_unit(&calibration),
                             .pascals = calloc(FLOW_MAX_BLOCK_FRAMES, sizeof(float))};
     struct listen_setup listen = {.stream = 1,
                                   .run = 1,
-                                  .n_channels = 1,
+                                  .n_channels = n_channels,
                                   .rate_hz = rate_hz,
                                   .map = {.rate_hz = rate_hz},
-                                  .calibration = {calibration},
+                                  .calibration = {calibration, calibration},
                                   .catalogue = catalogue};
     struct watch_setup watch = {.permit = &chain->permit,
                                 .contact_gap_s = 300,
@@ -144,11 +163,12 @@ bool chain_create(struct chain *chain, const struct catalogue *catalogue, double
                                 .silence_s = 120};
     bool good =
         chain->pascals &&
-        pulses_create(catalogue->classes, catalogue->n_classes, rate_hz, &chain->second) == STATUS_OK &&
+        (!arrivals ||
+         pulses_create(catalogue->classes, catalogue->n_classes, rate_hz, &chain->second) == STATUS_OK) &&
         permit_load("config/permits/demonstration.cfg", NULL, &problems, &chain->permit) == STATUS_OK &&
         listen_create(&listen, &chain->listen) == STATUS_OK &&
         watch_create(&watch, &chain->watch) == STATUS_OK &&
-        blocks_create(1, 1, rate_hz, &chain->blocks) == STATUS_OK;
+        blocks_create(1, n_channels, rate_hz, &chain->blocks) == STATUS_OK;
     problems_destroy(&problems);
     if (!good)
         chain_destroy(chain);
@@ -165,6 +185,7 @@ void chain_destroy(struct chain *chain)
     free(chain->trains);
     free(chain->arrivals);
     free(chain->calls);
+    free(chain->impulses_s);
     *chain = (struct chain){0};
 }
 
@@ -177,7 +198,8 @@ void chain_finish(struct chain *chain)
 {
     blocks_finish(chain->blocks, &(struct block_sink){take_block, chain});
     listen_finish(chain->listen, &(struct event_sink){take_event, chain});
-    pulses_finish(chain->second, &(struct found_sink){keep_train, chain});
+    if (chain->second)
+        pulses_finish(chain->second, &(struct found_sink){keep_train, chain});
 }
 
 uint32_t chain_count_contacts(const struct chain *chain, enum contact_grade grade)

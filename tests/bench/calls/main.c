@@ -4,7 +4,8 @@
  *
  * usage: calls_bench OUT_FOLDER [PIECE] [SEED] [SCALE] [BUDGET_S]
  *   PIECE     pulses, trains, tones, seas, confounders, costs; "all" those without a result; "pool" goes on
- *             with confounders, an hour of each in turn, until BUDGET_S have passed or 10 days are pooled
+ *             with confounders, 20 min of each in turn, until BUDGET_S have passed or 10 days are pooled
+ *             the name of a confounder runs that for SCALE hours and prints what came of it
  *   SEED      0: the number of the day
  *   SCALE     of the lengths and numbers of trials: 1; more checks the single pulses' noise law too */
 #include "bench/calls/calls.h"
@@ -135,7 +136,17 @@ static double hours_of(const json_t *rows, const char *sound)
     return hours;
 }
 
-/* Adds an hour of the confounder that has least, kept after each; every hour has a seed of its own. */
+static uint32_t with_least(const json_t *rows)
+{
+    uint32_t least = 0;
+    for (uint32_t i = 1; i < calls_confounders_count(); i++)
+        if (hours_of(rows, calls_confounder_name(i)) < hours_of(rows, calls_confounder_name(least)))
+            least = i;
+    return least;
+}
+
+/* Adds a stretch of the confounder that has least, kept after each; every stretch has a seed of its own,
+ * which follows from the first and how many there are. A run on another day goes on with its own seeds. */
 static bool pool(const struct bench *bench)
 {
     double start_s = now_s(), share_hours = POOL_HOURS / calls_confounders_count();
@@ -144,20 +155,21 @@ static bool pool(const struct bench *bench)
         all = json_pack("{s:s, s:s, s:[]}", "piece", "pool", "digest", bench->digest, "rows");
     json_t *rows = json_object_get(all, "rows");
     bool good = true;
+    double hours = 0;
     while (good && now_s() - start_s < bench->budget_s) {
-        uint32_t least = 0;
-        for (uint32_t i = 1; i < calls_confounders_count(); i++)
-            if (hours_of(rows, calls_confounder_name(i)) < hours_of(rows, calls_confounder_name(least)))
-                least = i;
+        uint32_t least = with_least(rows);
         if (hours_of(rows, calls_confounder_name(least)) >= share_hours)
             break;
         struct calls_setup setup = bench->setup;
         setup.seed += 7919 * json_array_size(rows);
-        json_t *row = calls_confounder(&setup, least, 1);
+        json_t *row = calls_confounder(&setup, least, CALLS_STRETCH_S / 3600);
         good = row && json_object_set_new(row, "seed", json_integer((json_int_t)setup.seed)) == 0 &&
                json_array_append_new(rows, row) == 0 && save(bench, "pool", all);
     }
-    fprintf(stderr, "pool: %zu h of %.0f\n", json_array_size(rows), POOL_HOURS);
+    for (uint32_t i = 0; i < calls_confounders_count(); i++)
+        hours += hours_of(rows, calls_confounder_name(i));
+    fprintf(stderr, "pool: %.1f h of %.0f; first seed of this run %llu\n", hours, POOL_HOURS,
+            (unsigned long long)bench->setup.seed);
     json_decref(all);
     return good;
 }
@@ -169,6 +181,14 @@ static bool has_result(const struct bench *bench, const char *piece)
                json_real_value(json_object_get(kept, "scale")) >= bench->setup.scale;
     json_decref(kept);
     return has;
+}
+
+/* A confounder by itself: printed, and not kept. */
+static bool show(json_t *row)
+{
+    bool good = row && json_dumpf(row, stdout, JSON_INDENT(1)) == 0 && puts("") >= 0;
+    json_decref(row);
+    return good;
 }
 
 static bool run(const struct bench *bench, const char *name)
@@ -183,6 +203,9 @@ static bool run(const struct bench *bench, const char *name)
         if (named || (all && !has_result(bench, pieces[i].name)))
             good = finish(bench, pieces[i].name, start_s, pieces[i].run(&bench->setup)) && good;
     }
+    for (uint32_t i = 0; !known && i < calls_confounders_count(); i++)
+        if (strcmp(name, calls_confounder_name(i)) == 0)
+            return show(calls_confounder(&bench->setup, i, bench->setup.scale));
     if (!known)
         fprintf(stderr, "no piece %s\n", name);
     return good && known;

@@ -182,7 +182,7 @@ static bool sailing_create(struct sailing *sailing, const struct calls_setup *se
     scene->duration_s = sea->stretch_s * fmax(1, round(setup->scale * 60 * sea->minutes / sea->stretch_s));
     scene->sea.wind_m_s = 6;
     scene->n_hydrophones = 1;
-    scene->hydrophones[0] = chain_hydrophone();
+    scene->hydrophones[0] = chain_hydrophone(0);
     sea->fill(scene);
     random_reset(&sailing->random, calls_seed(setup, 101, number));
     sailing->stretch.rate_hz = sea->rate_hz;
@@ -194,7 +194,8 @@ static bool sailing_create(struct sailing *sailing, const struct calls_setup *se
         sailing->next_s[v] = QUIET_S + random_between(&sailing->random, 0, 5);
         voice_draw(&sea->voices[v], sea->rate_hz, &sailing->random, &sailing->next[v]);
     }
-    return sailing->stretch.samples && chain_create(&sailing->chain, setup->catalogue, sea->rate_hz) &&
+    return sailing->stretch.samples &&
+           chain_create(&sailing->chain, setup->catalogue, sea->rate_hz, 1, true) &&
            render_create(scene, &sailing->render) == STATUS_OK;
 }
 
