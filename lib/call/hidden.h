@@ -1,5 +1,5 @@
-/* The last stretches of time in which the own source covers a class's band: a pulse may become known after
- * the stretch that it lies in. Used by pulses.c only. */
+/* The last stretches of time in which the own source covers a band: a pulse may become known after the
+ * stretch that it lies in. Used by pulses.c and tones_unheard.c only. */
 #ifndef CALL_HIDDEN_H
 #define CALL_HIDDEN_H
 
@@ -19,6 +19,16 @@ static inline void hidden_add(struct hidden *hidden, double start, double end)
     uint32_t at = hidden->n++ % HIDDEN_REMEMBERED;
     hidden->start[at] = start;
     hidden->end[at] = end;
+}
+
+/* As hidden_add, or where the newest stretch begins there, it now reaches to `end`. */
+static inline void hidden_extend(struct hidden *hidden, double start, double end)
+{
+    uint32_t newest = (hidden->n + HIDDEN_REMEMBERED - 1) % HIDDEN_REMEMBERED;
+    if (hidden->n > 0 && hidden->start[newest] >= start)
+        hidden->end[newest] = end;
+    else if (end > start)
+        hidden_add(hidden, start, end);
 }
 
 static inline bool hidden_has(const struct hidden *hidden, double frame)

@@ -345,6 +345,7 @@ void tones_hear_tail(struct tones *tones, const struct gate_tail *tail)
             const struct gate_tail_band *band = &tail->bands[b];
             tracer_set_tail(tones->tracers[i], band->low_hz, band->high_hz,
                             band->masked || band->ratio > TAIL_HEARD);
+            tracer_set_masked(tones->tracers[i], b, band);
         }
 }
 

@@ -34,25 +34,33 @@ static double refine_hz(const struct tracer *tracer, const float *power, uint32_
     return (tracer->first_bin + k + shift) * tracer->bin_hz;
 }
 
+/* Whether the own source leaves the path's cell to be heard. */
+static bool is_heard(const struct tracer *tracer, uint64_t last, uint32_t i)
+{
+    return row_of(tracer->history_snr, tracer, last - i)[tracer->trail[i]] > NOT_HEARD;
+}
+
 static void refine_trail(struct tracer *tracer, uint64_t last, uint32_t n)
 {
     for (uint32_t i = 0; i < n; i++)
         tracer->trail_hz[i] =
-            refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i]);
+            is_heard(tracer, last, i)
+                ? refine_hz(tracer, row_of(tracer->history_power, tracer, last - i), tracer->trail[i])
+                : (tracer->first_bin + tracer->trail[i]) * tracer->bin_hz;
 }
 
-/* Mean power of the cells beside the tone's, on both sides where the band has them. */
-static double power_beside(const struct tracer *tracer, const float *power, uint32_t k)
+/* Mean over the cells beside the tone's, on both sides where the band has them. */
+static double mean_beside(const struct tracer *tracer, const float *cells, uint32_t k)
 {
     double sum = 0;
     uint32_t n = 0;
     for (uint32_t d = FLANK + 1; d <= FLANK + 3; d++) {
         if (k >= d) {
-            sum += power[k - d];
+            sum += fmax(0, cells[k - d]);
             n++;
         }
         if (k + d < tracer->n_bins) {
-            sum += power[k + d];
+            sum += fmax(0, cells[k + d]);
             n++;
         }
     }
@@ -112,13 +120,17 @@ static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n
 {
     double snr = 0, contrast = 0, occupancy = 0, mean_square = 0;
     double st = 0, sl = 0, stt = 0, stl = 0;
+    uint32_t n_heard = 0;
     for (uint32_t i = 0; i < n; i++) {
+        if (!is_heard(tracer, last, i))
+            continue;
+        n_heard++;
         const float *power = row_of(tracer->history_power, tracer, last - i);
         const float *ratio = row_of(tracer->history_snr, tracer, last - i);
         uint32_t k = tracer->trail[i];
         double t = -(double)i / tracer->frame_rate, level_db = 10 * log10(power[k] + 1e-30);
         snr += ratio[k];
-        contrast += log((power[k] + 1e-30) / (power_beside(tracer, power, k) + 1e-30));
+        contrast += log((ratio[k] + 1e-30) / (mean_beside(tracer, ratio, k) + 1e-30));
         occupancy += tracer->occupancy[k];
         mean_square += tone_power(tracer, power, ratio, k);
         st += t;
@@ -126,12 +138,12 @@ static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n
         stt += t * t;
         stl += t * level_db;
     }
-    double spread = n * stt - st * st;
-    out->snr = snr / n;
-    out->contrast = exp(contrast / n);
-    out->occupancy = occupancy / n;
-    out->mean_square = mean_square / n;
-    out->fall_db_s = spread > 0 ? -(n * stl - st * sl) / spread : 0;
+    double spread = n_heard * stt - st * st;
+    out->snr = n_heard > 0 ? snr / n_heard : 0;
+    out->contrast = n_heard > 0 ? exp(contrast / n_heard) : 0;
+    out->occupancy = n_heard > 0 ? occupancy / n_heard : 0;
+    out->mean_square = n_heard > 0 ? mean_square / n_heard : 0;
+    out->fall_db_s = spread > 0 ? -(n_heard * stl - st * sl) / spread : 0;
 }
 
 /* How far the course is from a straight line, and how it jumps. */

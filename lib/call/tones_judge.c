@@ -24,8 +24,9 @@ bool judge_is_same_sound(const struct judge *judge, const struct contour *a, con
     if (related_is_same_line(a, b) || related_is_harmonic(a, b))
         return true;
     bool same_group = (judge->groups[a->tracer] & judge->groups[b->tracer]) != 0;
-    if ((a->tracer == b->tracer || !same_group) && related_is_apart(a, b))
-        return false; /* another window of the group sees the same sound otherwise */
+    /* Another window of the group may see the same sound otherwise. */
+    if (related_is_apart(a, b, same_group && a->tracer != b->tracer))
+        return false;
     return common >= CONTAINED * (same_group ? fmin(length[0], length[1]) : fmax(length[0], length[1]));
 }
 

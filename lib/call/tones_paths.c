@@ -58,7 +58,8 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr
     const float peak = before->peak[from] * tracer->tail_fall;
     now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
     const float most = GROWTH * before->level[from];
-    now->level[at] = before->level[from] + SMOOTHING * ((snr < most ? snr : most) - before->level[from]);
+    const float heard = snr > NOT_HEARD ? snr : before->level[from];
+    now->level[at] = before->level[from] + SMOOTHING * ((heard < most ? heard : most) - before->level[from]);
     now->peak[at] = now->level[at] > peak ? now->level[at] : peak;
     now->path[at] = before->path[from];
     now->first[at] = before->first[from];
@@ -69,7 +70,8 @@ static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceilin
 {
     const uint32_t at = k + MAX_STEP;
     const int step = tracer->step[k];
-    if (tracer->gain[k] > FLANK_GAIN && snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
+    if (snr > NOT_HEARD && tracer->gain[k] > FLANK_GAIN &&
+        snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
         const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
         tracer->now.score[at] = score > 0 ? score : 0;
         if (score <= 0)

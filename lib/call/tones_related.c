@@ -14,6 +14,7 @@
 #define APART_MOSTLY 0.5    /* ... for this share of the time */
 #define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
 #define FAR_WEAKER 0.01
+#define SMOOTH_BINS 1.0 /* mean jump of what keeps to one line */
 #define ECHO_S 0.5
 #define LEAST_MULTIPLE 1.4 /* any ratio below it rounds to 1 */
 #define NEAR_HZ 0.01       /* more than what is lost where a frequency is kept as a float */
@@ -164,14 +165,32 @@ bool related_is_harmonic(const struct contour *a, const struct contour *b)
            share_in_ratio(&common, ratio_of(&common), HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY;
 }
 
-bool related_is_apart(const struct contour *a, const struct contour *b)
+/* It sweeps, and not by going from one line to another. */
+static bool sweeps_smoothly(const struct contour *c, const double hz[TRACE_POINTS])
 {
-    if (!may_sweep(a) || !may_sweep(b))
+    return c->jump_hz <= SMOOTH_BINS * c->bin_hz && sweep_within(c, hz) >= SWEEPS;
+}
+
+/* They are never near each other. */
+static bool never_meet(const struct contour *a, const struct contour *b, const struct common *common)
+{
+    const double tolerance_hz = 2.5 * fmax(a->bin_hz, b->bin_hz);
+    bool meet = false;
+    for (uint32_t i = 0; i < TRACE_POINTS; i++)
+        meet = meet || fabs(common->a[i] - common->b[i]) < tolerance_hz;
+    return !meet;
+}
+
+bool related_is_apart(const struct contour *a, const struct contour *b, bool seen_otherwise)
+{
+    if (!may_sweep(a) && !may_sweep(b))
         return false;
     struct common common;
     sample_common(a, b, &common);
-    return sweep_within(a, common.a) >= SWEEPS && sweep_within(b, common.b) >= SWEEPS &&
-           share_kept(a, b, &common, APART_ERROR) < APART_MOSTLY;
+    const bool both = sweep_within(a, common.a) >= SWEEPS && sweep_within(b, common.b) >= SWEEPS;
+    const bool one =
+        (sweeps_smoothly(a, common.a) || sweeps_smoothly(b, common.b)) && never_meet(a, b, &common);
+    return ((both && !seen_otherwise) || one) && share_kept(a, b, &common, APART_ERROR) < APART_MOSTLY;
 }
 
 /* It sweeps, and not as the other does (which may stand still), and lies so far above that it is not a path

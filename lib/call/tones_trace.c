@@ -94,6 +94,8 @@ static bool make_arrays(struct tracer *tracer)
     good = (tracer->limited = calloc(tracer->n, sizeof(float))) && good;
     good = (tracer->power_store = calloc(tracer->n / 2 + 1 + 3 * TILE, sizeof(float))) && good;
     tracer->power = tracer->power_store ? tracer->power_store + TILE : NULL;
+    good = (tracer->excess_store = calloc(k + 2 * TILE, sizeof(float))) && good;
+    tracer->excess = tracer->excess_store ? tracer->excess_store + TILE : NULL;
     good = (tracer->centre = calloc(history, sizeof *tracer->centre)) && good;
     good = (tracer->history_step = calloc(history * k, 1)) && good;
     good = (tracer->history_power = calloc(history * k, sizeof(float))) && good;
@@ -140,11 +142,12 @@ void tracer_destroy(struct tracer *tracer)
         return;
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
-    void *const arrays[] = {tracer->level,       tracer->floor,   tracer->smooth,       tracer->smooth_snr,
-                            tracer->occupancy,   tracer->gain,    tracer->best,         tracer->step,
-                            tracer->held,        tracer->limited, tracer->power_store,  tracer->tail,
-                            tracer->centre,      tracer->trail,   tracer->history_step, tracer->history_power,
-                            tracer->history_snr, tracer->trail_hz};
+    void *const arrays[] = {
+        tracer->level,         tracer->floor,       tracer->smooth,      tracer->smooth_snr,
+        tracer->occupancy,     tracer->gain,        tracer->best,        tracer->step,
+        tracer->held,          tracer->limited,     tracer->power_store, tracer->tail,
+        tracer->excess_store,  tracer->centre,      tracer->trail,       tracer->history_step,
+        tracer->history_power, tracer->history_snr, tracer->trail_hz};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);
@@ -170,7 +173,7 @@ static inline lanes trust(lanes x, lanes per_square, lanes start)
  * signal in a mixture of two normal laws (Kassam 1988, "Signal Detection in Non-Gaussian Noise", ch. 2) but
  * for the transients' own share x / b2. s is the mean size times sqrt(pi / 2), as of normal noise; the crest
  * of a steady tone is 1.25 s at any level, and one that fills only 0.4 of the frame still passes. */
-static void limit_transients(const float *in, float *out, uint32_t n)
+static void limit_transients(const float *in, float *out, uint32_t n, uint32_t n_heard)
 {
     lanes sizes = lanes_all(0);
     uint32_t i = 0;
@@ -179,7 +182,7 @@ static void limit_transients(const float *in, float *out, uint32_t n)
     double sum = lanes_sum(sizes);
     for (; i < n; i++)
         sum += fabsf(in[i]);
-    const double s = 1.2533 * sum / n, shape = 1 - 1 / (TRANSIENT_SCALE * TRANSIENT_SCALE);
+    const double s = 1.2533 * sum / n_heard, shape = 1 - 1 / (TRANSIENT_SCALE * TRANSIENT_SCALE);
     const double odds = TRANSIENT_SCALE * (1 - TRANSIENT_SHARE) / TRANSIENT_SHARE;
     const lanes per_square = lanes_all((float)(shape / (2 * EXP_POWER * s * s + 1e-30)));
     const lanes start = lanes_all(1 - (float)log(odds) / EXP_POWER);
@@ -191,13 +194,24 @@ static void limit_transients(const float *in, float *out, uint32_t n)
         out[i] = in[i] * trust(lanes_all(in[i]), per_square, start)[0];
 }
 
-/* The highest power within three bins of four cells. */
-static lanes loudest_near(const float *power)
+/* The highest within three bins of four cells. */
+static lanes loudest_near(const float *cells)
 {
-    lanes loudest = lanes_load(power - NEAR);
+    lanes loudest = lanes_load(cells - NEAR);
     for (int d = -NEAR + 1; d <= NEAR; d++)
-        loudest = lanes_greatest(loudest, lanes_load(power + d));
+        loudest = lanes_greatest(loudest, lanes_load(cells + d));
     return loudest;
+}
+
+/* What each cell holds over its background: a line that was always there is in the background of the cells
+ * beside it too, and hides no call that crosses it. */
+static void find_excess(struct tracer *tracer)
+{
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE)
+        lanes_store(tracer->excess + k,
+                    lanes_load(tracer->power + tracer->first_bin + k) - lanes_load(tracer->level + k));
+    for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
+        tracer->excess[k] = 0;
 }
 
 /* From power to log-likelihood ratios, over the background or the tail of a path that has just been there. A
@@ -207,9 +221,10 @@ static void weigh_cells(struct tracer *tracer)
     const lanes slope = lanes_all(DESIGN_SNR / (1 + DESIGN_SNR)), offset = lanes_all(logf(1 + DESIGN_SNR));
     const lanes remember = lanes_all((float)(1 / (OCCUPANCY_S * tracer->frame_rate)));
     float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
+    find_excess(tracer);
     for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
         const lanes power = lanes_load(tracer->power + tracer->first_bin + k);
-        const lanes leak = lanes_all(LEAK_SHARE) * loudest_near(tracer->power + tracer->first_bin + k);
+        const lanes leak = lanes_all(LEAK_SHARE) * loudest_near(tracer->excess + k);
         const lanes level = lanes_load(tracer->level + k), snr = power / level;
         lanes occupancy = lanes_load(tracer->occupancy + k), smooth = lanes_load(tracer->smooth + k);
         lanes floor = lanes_load(tracer->floor + k);
@@ -231,19 +246,33 @@ static void weigh_cells(struct tracer *tracer)
     }
 }
 
+/* The power of the frame that is held. */
+static void hear_frame(struct tracer *tracer)
+{
+    uint32_t n_heard = unheard_silence(tracer);
+    limit_transients(tracer->held, tracer->limited, tracer->n, n_heard);
+    double good = unheard_make_good(tracer);
+    if (good <= 0)
+        return; /* it stays as it was */
+    spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
+    for (uint32_t k = 0; k < tracer->n_bins && good > 1; k++)
+        tracer->power[tracer->first_bin + k] *= (float)good;
+}
+
 static void take_frame(struct tracer *tracer, const struct trace_sink *sink)
 {
-    limit_transients(tracer->held, tracer->limited, tracer->n);
-    spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
     uint32_t row = tracer_row(tracer, tracer->frame);
     const float *power = tracer->power + tracer->first_bin;
-    memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
+    hear_frame(tracer);
     double samples = (double)tracer->n_shifted + (tracer->n - 1) / 2.0;
     tracer->centre[row] = (double)tracer->origin + samples * tracer->setup.factor - tracer->setup.late_frames;
     tracer->newest = tracer->frame;
     bool ready = background_is_ready(tracer->background);
     background_push(tracer->background, power, tracer->level);
+    unheard_replace(tracer);
+    memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
     weigh_cells(tracer);
+    unheard_clear(tracer);
     for (uint32_t k = 0; k < tracer->n_bins && !ready; k++)
         tracer->gain[k] = -1;
     paths_advance(tracer, sink);
