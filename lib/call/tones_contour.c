@@ -87,7 +87,8 @@ static uint32_t follow_back(struct tracer *tracer, const struct path *path)
     for (uint64_t frame = path->last_rise;; frame--) {
         tracer->trail[n++] = (uint32_t)k;
         int step = tracer->history_step[(size_t)tracer_row(tracer, frame) * tracer->stride + (uint32_t)k];
-        if (step == STEP_START || frame == 0 || n + tracer->gap + 2 >= tracer->n_history)
+        if (step == STEP_START || frame == 0 ||
+            n + tracer->gap + tracer->max_unheard + 2 >= tracer->n_history)
             return n;
         k -= step;
     }
@@ -211,9 +212,13 @@ static double measure_remains(const struct tracer *tracer, uint64_t last, uint32
     double along = 0, after = 0;
     for (uint32_t i = 0; i < n; i++)
         along += cell_power(tracer, last, i) / n;
+    uint32_t n_after = 0;
     for (uint64_t frame = last + 1; frame <= tracer->newest; frame++)
-        after += (double)row_of(tracer->history_power, tracer, frame)[tracer->trail[0]];
-    return along > 0 && tracer->newest > last ? after / (double)(tracer->newest - last) / along : 0;
+        if (row_of(tracer->history_snr, tracer, frame)[tracer->trail[0]] > NOT_HEARD) {
+            after += (double)row_of(tracer->history_power, tracer, frame)[tracer->trail[0]];
+            n_after++;
+        }
+    return along > 0 && n_after > 0 ? after / n_after / along : 0;
 }
 
 bool contour_is_flat(const struct contour *contour)

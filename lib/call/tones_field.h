@@ -31,6 +31,7 @@ struct path {
     float best;         /* highest score, no more than the ceiling */
     uint64_t first;     /* frame of its start */
     uint64_t last_rise; /* last frame at which the score reached its highest */
+    uint32_t n_unheard; /* frames since then in which the own source covered it */
     uint32_t best_bin;  /* there */
     float tip;          /* highest score in the newest frame, and its bin */
     uint32_t tip_bin;
@@ -62,7 +63,8 @@ struct tracer {
     double bin_hz, hop; /* of the spectrum; hop in input frames */
     uint32_t n, n_bins, first_bin;
     uint32_t stride;        /* n_bins, rounded up to a multiple of TILE */
-    uint32_t max_step, gap; /* bins a frame; frames that are bridged */
+    uint32_t max_step, gap; /* bins a frame; frames that are bridged ... */
+    uint32_t max_unheard;   /* ... besides those that the own source covers, at most so many */
     uint32_t n_history;
 
     struct spectrum *spectrum;

@@ -21,11 +21,14 @@ bool judge_is_same_sound(const struct judge *judge, const struct contour *a, con
         return true;
     if (common <= 0)
         return false;
-    if (related_is_same_line(a, b) || related_is_harmonic(a, b))
+    if (related_is_same_line(a, b) || related_is_harmonic(a, b) || related_is_blurred(a, b) ||
+        related_is_blurred(b, a))
         return true;
     bool same_group = (judge->groups[a->tracer] & judge->groups[b->tracer]) != 0;
-    /* Another window of the group may see the same sound otherwise. */
-    if (related_is_apart(a, b, same_group && a->tracer != b->tracer))
+    /* Another window of the group may see the same sound otherwise, but not elsewhere. */
+    if ((a->tracer == b->tracer || !same_group) && related_is_apart(a, b))
+        return false;
+    if (same_group && related_is_across(a, b))
         return false;
     return common >= CONTAINED * (same_group ? fmin(length[0], length[1]) : fmax(length[0], length[1]));
 }

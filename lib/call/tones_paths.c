@@ -12,6 +12,7 @@
 #define GAP_COST 12.0F    /* fall of the score that ends a path: a gap of about 8 frames */
 #define PIECE_SWEEPS 0.03 /* of its frequency: what is too long for a call, and yet no line */
 #define REMAINS 0.5       /* of its power after its end: it has not ended */
+#define REFUTED 6.0F      /* 1 in 400 */
 #define SLOPE_GAIN 0.35F  /* how fast the slope follows */
 
 typedef int8_t tile_bytes __attribute__((vector_size(TILE)));
@@ -88,6 +89,23 @@ static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceilin
     }
 }
 
+/* A path has one course: what leads elsewhere and is so much less likely than where the path stands is no
+ * part of it. There another may begin, which would else be taken for the rest of this one. */
+static void refute_cell(struct tracer *tracer, uint32_t k, float snr)
+{
+    struct cells *now = &tracer->now;
+    const uint32_t at = k + MAX_STEP;
+    if (now->path[at] == NO_PATH || now->score[at] >= tracer->paths[now->path[at]].tip - REFUTED)
+        return;
+    now->path[at] = NO_PATH;
+    now->score[at] = tracer->gain[k] > 0 ? tracer->gain[k] : 0;
+    now->slope[at] = 0;
+    now->level[at] = now->peak[at] = snr > NOT_HEARD ? snr : 0;
+    now->first[at] = tracer->frame;
+    tracer->tail[k] = 0;
+    tracer->history_step[(size_t)tracer_row(tracer, tracer->frame) * tracer->stride + k] = STEP_START;
+}
+
 static void forget_tips(struct tracer *tracer)
 {
     while (tracer->n_paths > 0 && !tracer->paths[tracer->n_paths - 1].open)
@@ -122,6 +140,8 @@ static void step_cells(struct tracer *tracer)
             step_cell(tracer, at, snrs[at], ceiling);
         }
     }
+    for (uint32_t k = 0; k < tracer->n_bins && tracer->n_paths > 0; k++)
+        refute_cell(tracer, k, snrs[k]);
 }
 
 /* Nothing may go on from the cells of a path that has ended. */
@@ -166,19 +186,23 @@ static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
 {
     const float ceiling = (float)tracer->setup.ceiling;
     const double max_frames = tracer->setup.max_s * tracer->frame_rate - 2;
+    const float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     for (uint32_t i = 0; i < tracer->n_paths; i++) {
         struct path *path = &tracer->paths[i];
         if (!path->open)
             continue;
         float tip = path->tip < ceiling ? path->tip : ceiling;
+        path->n_unheard += snrs[path->tip_bin] <= NOT_HEARD && path->n_unheard < tracer->max_unheard;
         if (tip >= path->best) {
             path->best = tip;
             path->last_rise = tracer->frame;
+            path->n_unheard = 0;
             path->best_bin = path->tip_bin;
         }
         if ((double)(path->last_rise - path->first) > max_frames)
             end_path(tracer, i, TRACE_STEADY_LINE, sink);
-        else if (tip <= path->best - GAP_COST || tracer->frame - path->last_rise >= tracer->gap)
+        else if (tip <= path->best - GAP_COST ||
+                 tracer->frame - path->last_rise >= tracer->gap + path->n_unheard)
             end_path(tracer, i, TRACE_CONTOUR, sink);
     }
 }
@@ -200,7 +224,13 @@ static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink
             continue;
         float ceiling = (float)tracer->setup.ceiling;
         float best = now->score[at] < ceiling ? now->score[at] : ceiling;
-        *path = (struct path){true, best, now->first[at], tracer->frame, k, now->score[at], k};
+        *path = (struct path){.open = true,
+                              .best = best,
+                              .first = now->first[at],
+                              .last_rise = tracer->frame,
+                              .best_bin = k,
+                              .tip = now->score[at],
+                              .tip_bin = k};
         now->path[at] = (int16_t)i;
         tracer->n_paths = i < tracer->n_paths ? tracer->n_paths : i + 1;
         return;

@@ -16,6 +16,7 @@
 #define TRANSIENT_SCALE 10.0
 #define MOST_RISE_DB_S 0.5 /* of the background, by a call ... */
 #define MOST_RISE_DB 3.0   /* ... and by the longest one in all */
+#define MOST_UNHEARD_S 1.0 /* that a path waits for its call to come out from behind a blow */
 #define EXP_POWER 8.0F     /* exp(u) is taken as (1 + u / 8)^8 */
 
 /* The even number with no prime above 5 that is nearest to x. */
@@ -48,7 +49,9 @@ static void choose_bins(struct tracer *tracer)
     tracer->max_step = (uint32_t)fmin(fmax(step, 1), MAX_STEP);
     tracer->stride = (tracer->n_bins + TILE - 1) / TILE * TILE;
     tracer->tail_fall = (float)pow(10, -TAIL_FALL_DB_S / 10 / tracer->frame_rate);
-    tracer->n_history = (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + 4;
+    tracer->max_unheard = (uint32_t)ceil(MOST_UNHEARD_S * tracer->frame_rate);
+    tracer->n_history =
+        (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + tracer->max_unheard + 4;
 }
 
 double tracer_cells_per_s(const struct tracer_setup *setup)
