@@ -17,7 +17,7 @@ double trains_fit_level(double difference_db, double spread_db)
 
 /* Looks how often pulses of the newest one's level and look come: the density of those before it, each spread
  * as the steps of a chain are. */
-static void look_around(struct trains *trains, const struct node *node)
+static void look_around(struct trains *trains, struct node *node)
 {
     double span_s = RATE_INTERVALS * trains->call_class.train.max_interval_s, sum = 0;
     uint64_t last = trains->n_pulses - 1;
@@ -37,7 +37,9 @@ static void look_around(struct trains *trains, const struct node *node)
             sum += trains_fit_level(difference_db, LEVEL_DEVIATION_DB) * exp(likeness);
     }
     double rate = sum / fmax(span_s, trains->call_class.train.min_interval_s);
-    around->ln_rate = log(fmax(RANK_SHARE * rate, trains_noise_rate(trains, node->pulse.snr)) + RATE_FLOOR);
+    double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
+    double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, STEADY_DEVIATION_DB);
+    node->ln_rate = log(fmax(RANK_SHARE * rate, noise) + RATE_FLOOR);
 }
 
 /* Takes a link into a pulse's list, which keeps the best few. */
@@ -84,19 +86,19 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
 }
 
 /* A chain of two pulses. */
-static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score,
-                              double ln_rate)
+static struct link first_pair(uint64_t number, const struct node *from, const struct node *node,
+                              double ln_interval, double score)
 {
     return (struct link){.previous = number,
                          .first = number,
-                         .first_time_s = time_s,
+                         .first_time_s = from->time_s,
                          .n = 2,
                          .steps = 1,
                          .ln_interval = ln_interval,
                          .gain = score,
                          .score = {score, score},
-                         .ln_rates = ln_rate,
-                         .rank = score - ln_rate};
+                         .ln_rates = from->ln_rate + node->ln_rate,
+                         .rank = score - from->ln_rate - node->ln_rate};
 }
 
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
@@ -105,11 +107,11 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     const struct train_shape *shape = &trains->call_class.train;
     const struct node *from = trains_node(trains, number);
     double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
-    double ln_interval = log(interval), ln_rate = trains->around.ln_rate;
+    double ln_interval = log(interval);
     double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
     if (interval <= shape->max_interval_s && from->owner == 0)
-        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - cost, ln_rate);
+        best = first_pair(number, from, node, ln_interval, -ln_interval - trains->ln_range - cost);
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
         if (from->owner && link->train != from->owner)
@@ -124,7 +126,7 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
         double common = trains->ln_steps[m] - ln_interval - cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
         double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
-        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - ln_rate;
+        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - node->ln_rate;
         if (rank <= best.rank)
             continue;
         best = (struct link){.previous = number,
@@ -138,7 +140,7 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .ln_ratio = d,
                              .gain = fmax(gain[NARROW], gain[WIDE]),
                              .score = {score[NARROW], score[WIDE]},
-                             .ln_rates = link->ln_rates + ln_rate,
+                             .ln_rates = link->ln_rates + node->ln_rate,
                              .alike = link->alike,
                              .rank = rank};
     }

@@ -49,6 +49,7 @@ struct link {
 struct node {
     struct pulse pulse;
     double time_s, level_db;
+    double ln_rate; /* of the rate at which pulses such as this come, by which chains are compared */
     uint32_t owner; /* train that has claimed it; 0 none, HIDDEN */
     uint32_t n_links;
     struct link links[LINKS];
@@ -72,7 +73,6 @@ struct open_train {
 struct around {
     uint32_t n;
     double likeness[SAMPLED]; /* [n], the latest first; 0 of those far from its level */
-    double ln_rate;           /* of the rate at which such pulses come, by which chains are compared */
 };
 
 struct trains {
