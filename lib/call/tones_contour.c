@@ -7,8 +7,10 @@
 #define FLAT_SHARE 0.05  /* of its frequency, or FLAT_BINS: what is flat within FLAT_S */
 #define FLAT_BINS 3
 #define FLAT_S 5.0
-#define MOST_JUMP 4 /* bins that one jump counts: a whistle's few steps are no hopping */
-#define FLANK 2     /* bins beside a tone's that hold its power (Hann) */
+#define MOST_JUMP 4       /* bins that one jump counts: a whistle's few steps are no hopping */
+#define MOST_WEIGHT 100.0 /* of one frame: 20 dB */
+#define NOISE_RATIO 3.0   /* power over background that noise alone has in 1 cell of 20 */
+#define FLANK 2           /* bins beside a tone's that hold its power (Hann) */
 
 static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
 {
@@ -147,25 +149,29 @@ static void measure_cells(const struct tracer *tracer, uint64_t last, uint32_t n
     out->fall_db_s = spread > 0 ? -(n_heard * stl - st * sl) / spread : 0;
 }
 
-/* How far the course is from a straight line, and how it jumps. */
-static void measure_smoothness(const struct tracer *tracer, uint32_t n, struct contour *out)
+/* How far the course is from a straight line, and how it jumps. Each frame weighs as much as its cell stands
+ * out, for the variance of a frequency goes as its reciprocal: ends that lie in noise say little. */
+static void measure_smoothness(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
 {
-    double sx = 0, sy = 0, sxx = 0, sxy = 0, syy = 0, jumps = 0, before[2] = {0, 0};
+    double sw = 0, sx = 0, sy = 0, sxx = 0, sxy = 0, syy = 0, jumps = 0, before[2] = {0, 0};
     for (uint32_t i = 0; i < n; i++) {
         const double hz = tracer->trail_hz[i];
-        double x = i - (n - 1) / 2.0, y = hz - tracer->first_bin * tracer->bin_hz, second;
-        sx += x;
-        sy += y;
-        sxx += x * x;
-        sxy += x * y;
-        syy += y * y;
+        const float *ratio = row_of(tracer->history_snr, tracer, last - i);
+        double w = fmin(fmax(ratio[tracer->trail[i]] - NOISE_RATIO, 1e-3), MOST_WEIGHT), second;
+        double x = i - (n - 1) / 2.0, y = hz - tracer->first_bin * tracer->bin_hz;
+        sw += w;
+        sx += w * x;
+        sy += w * y;
+        sxx += w * x * x;
+        sxy += w * x * y;
+        syy += w * y * y;
         second = hz - 2 * before[0] + before[1];
         jumps += i >= 2 ? fmin(fabs(second), MOST_JUMP * tracer->bin_hz) : 0;
         before[1] = before[0];
         before[0] = hz;
     }
-    double spread = sxx - sx * sx / n, slope = spread > 0 ? (sxy - sx * sy / n) / spread : 0;
-    out->bend_hz = sqrt(fmax(0, syy - sy * sy / n - slope * slope * spread) / n);
+    double spread = sxx - sx * sx / sw, slope = spread > 0 ? (sxy - sx * sy / sw) / spread : 0;
+    out->bend_hz = sw > 0 ? sqrt(fmax(0, syy - sy * sy / sw - slope * slope * spread) / sw) : 0;
     out->jump_hz = n > 2 ? jumps / (n - 2) : 0;
 }
 
@@ -221,13 +227,27 @@ static double measure_remains(const struct tracer *tracer, uint64_t last, uint32
     return along > 0 && n_after > 0 ? after / n_after / along : 0;
 }
 
+/* How far what is flat may go, at the highest frequency. */
+static double flat_hz(const struct contour *contour, double high_hz)
+{
+    return fmax(FLAT_BINS * contour->bin_hz,
+                high_hz * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
+}
+
 bool contour_is_flat(const struct contour *contour)
 {
-    const double high = contour->high_hz, extent = high - contour->low_hz;
-    const double flat_hz =
-        fmax(FLAT_BINS * contour->bin_hz, high * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
-    return extent <= flat_hz ||
-           (fabs(contour->sweep_hz) <= flat_hz && contour->bend_hz <= 2 * contour->bin_hz);
+    const double high = contour->high_hz, extent = high - contour->low_hz, most = flat_hz(contour, high);
+    return extent <= most || (fabs(contour->sweep_hz) <= most && contour->bend_hz <= 2 * contour->bin_hz);
+}
+
+bool contour_settles(const struct contour *contour)
+{
+    double low = INFINITY, high = 0;
+    for (uint32_t i = TRACE_POINTS / 2; i < TRACE_POINTS; i++) {
+        low = fmin(low, contour->hz[i]);
+        high = fmax(high, contour->hz[i]);
+    }
+    return high - low <= flat_hz(contour, high);
 }
 
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
@@ -244,7 +264,7 @@ void contour_trace(struct tracer *tracer, const struct path *path, bool whole, s
         refine_trail(tracer, last, n);
         measure_cells(tracer, last, n, out);
         measure_shape(tracer, n, out);
-        measure_smoothness(tracer, n, out);
+        measure_smoothness(tracer, last, n, out);
     } else
         measure_course(tracer, last, n, out);
 }

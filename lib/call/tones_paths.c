@@ -170,7 +170,7 @@ static void end_path(struct tracer *tracer, uint32_t i, enum trace_end end, cons
 {
     struct contour contour;
     contour_trace(tracer, &tracer->paths[i], true, &contour);
-    const bool flat = contour_is_flat(&contour);
+    const bool flat = contour_is_flat(&contour) || contour_settles(&contour);
     const bool sweeps = fabs(contour.sweep_hz) > PIECE_SWEEPS * contour.high_hz;
     if (end == TRACE_STEADY_LINE && sweeps && !flat)
         end = TRACE_CONTOUR; /* a piece of what is too long */

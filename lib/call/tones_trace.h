@@ -62,6 +62,8 @@ struct tracer_setup {
 /* Whether a contour (traced whole) stays where it is, but for single cells: a machine's line drifts by less
  * than 1 % in 10 s, a short one cannot be told so finely. */
 bool contour_is_flat(const struct contour *contour);
+/* Whether its second half does so: a line that rose out of noise, or was first traced beside another one. */
+bool contour_settles(const struct contour *contour);
 
 struct tracer;
 
