@@ -189,10 +189,43 @@ static struct sound *find_sound(struct judge *judge, const struct contour *c, en
     return found ? found : unused;
 }
 
+/* Of the classes with nearly the most points the one that lets least through. */
+static uint32_t best_class(const struct judge *judge, const struct sound *sound)
+{
+    double most = 0;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        most = fmax(most, sound->points[i]);
+    uint32_t best = 0;
+    double least = INFINITY;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        if (sound->points[i] > 0 && sound->points[i] >= NEARLY_BEST * most &&
+            judge->classes[i].allowance < least) {
+            least = judge->classes[i].allowance;
+            best = i;
+        }
+    return best;
+}
+
+/* Sounds that waited for a contour which proves a steady line are pieces of it: where their paths left it is
+ * noise. */
+static void drop_pieces_of_line(struct judge *judge, const struct contour *line)
+{
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        struct sound *sound = &judge->sounds[i];
+        if (!sound->used || sound->given || sound->start_frame < line->start_frame ||
+            !belongs(judge, sound, line))
+            continue;
+        judge->rejections[best_class(judge, sound)][REJECT_STEADY_LINE]++;
+        sound->used = false;
+    }
+}
+
 void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const struct contour *contour)
 {
     struct contour c = contour ? *contour : (struct contour){0};
     c.tracer = tracer;
+    if (contour && end == TRACE_STEADY_LINE)
+        drop_pieces_of_line(judge, &c);
     enum rejection all = reject_contour(judge, end, &c), each[CATALOGUE_MAX_CLASSES];
     bool fits = false;
     for (uint32_t i = 0; i < judge->n_classes; i++) {
@@ -215,23 +248,6 @@ void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const 
         else if (!fits || (!sound && each[i] == REJECT_COUNT))
             judge->rejections[i][fits ? why : each[i]]++;
     }
-}
-
-/* Of the classes with nearly the most points the one that lets least through. */
-static uint32_t best_class(const struct judge *judge, const struct sound *sound)
-{
-    double most = 0;
-    for (uint32_t i = 0; i < judge->n_classes; i++)
-        most = fmax(most, sound->points[i]);
-    uint32_t best = 0;
-    double least = INFINITY;
-    for (uint32_t i = 0; i < judge->n_classes; i++)
-        if (sound->points[i] > 0 && sound->points[i] >= NEARLY_BEST * most &&
-            judge->classes[i].allowance < least) {
-            least = judge->classes[i].allowance;
-            best = i;
-        }
-    return best;
 }
 
 static bool is_due(const struct judge *judge, const struct sound *sound, double frame)
