@@ -11,6 +11,7 @@
 #define MOST_WEIGHT 100.0 /* of one frame: 20 dB */
 #define NOISE_RATIO 3.0   /* power over background that noise alone has in 1 cell of 20 */
 #define FLANK 2           /* bins beside a tone's that hold its power (Hann) */
+#define OPEN_CELLS 48     /* of a path that is open, and looked at again and again, tell its mean power */
 
 static const float *row_of(const float *history, const struct tracer *tracer, uint64_t frame)
 {
@@ -103,11 +104,11 @@ static double cell_power(const struct tracer *tracer, uint64_t last, uint32_t i)
 
 /* A path may come out of noise, and a loud call is felt in spectra that only touch its beginning: cells at
  * the start that are far below the path's mean, or below the next few, are dropped. */
-static uint32_t trim_start(const struct tracer *tracer, uint64_t last, uint32_t n)
+static uint32_t trim_start(const struct tracer *tracer, uint64_t last, uint32_t n, uint32_t every)
 {
     double mean = 0;
-    for (uint32_t i = 0; i < n; i++)
-        mean += cell_power(tracer, last, i) / n;
+    for (uint32_t i = 0; i < n; i += every)
+        mean += cell_power(tracer, last, i) / ((n + every - 1) / every);
     while (n > 4) {
         double next = fmax(cell_power(tracer, last, n - 2),
                            fmax(cell_power(tracer, last, n - 3), cell_power(tracer, last, n - 4)));
@@ -198,11 +199,12 @@ static void measure_shape(const struct tracer *tracer, uint32_t n, struct contou
 /* What tells whether an open path goes on with a sound: where it runs and how strong it is. */
 static void measure_course(const struct tracer *tracer, uint64_t last, uint32_t n, struct contour *out)
 {
+    const uint32_t every = 1 + n / OPEN_CELLS;
     double power = 0;
-    for (uint32_t i = 0; i < n; i++)
+    for (uint32_t i = 0; i < n; i += every)
         power += tone_power(tracer, row_of(tracer->history_power, tracer, last - i),
                             row_of(tracer->history_snr, tracer, last - i), tracer->trail[i]);
-    out->mean_square = power / n;
+    out->mean_square = power / ((n + every - 1) / every);
     out->low_hz = INFINITY;
     for (uint32_t p = 0; p < TRACE_POINTS; p++) {
         uint32_t i = n - 1 - p * (n - 1) / (TRACE_POINTS - 1);
@@ -253,7 +255,8 @@ bool contour_settles(const struct contour *contour)
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)
 {
     uint64_t last = path->last_rise;
-    uint32_t n = trim_start(tracer, last, follow_back(tracer, path));
+    uint32_t n = follow_back(tracer, path);
+    n = trim_start(tracer, last, n, whole ? 1 : 1 + n / OPEN_CELLS);
     *out = (struct contour){.n_cells = n, .score = path->best, .bin_hz = tracer->bin_hz};
     out->start_frame = tracer->centre[tracer_row(tracer, last - (n - 1))] - tracer->hop / 2;
     out->end_frame = tracer->centre[tracer_row(tracer, last)] + tracer->hop / 2;

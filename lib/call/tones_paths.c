@@ -15,40 +15,46 @@
 #define REFUTED 6.0F      /* 1 in 400 */
 #define SLOPE_GAIN 0.35F  /* how fast the slope follows */
 
-typedef int8_t tile_bytes __attribute__((vector_size(TILE)));
+typedef int8_t wide_bytes __attribute__((vector_size(WIDE_LANES)));
 
-/* For four cells from k on the best path that leads to each; 0 where it is better to begin there. */
-static inline void find_best(struct tracer *tracer, uint32_t k, int8_t *out_steps)
+/* The best path that leads to each cell, 0 where it is better to begin there, and the score with the cell's
+ * own gain. Cells begin paths, but for those that go on from another. */
+LANES_WIDE static void find_best(struct tracer *tracer, const float *snrs, int8_t *out_steps,
+                                 float *out_scores)
 {
-    const lanes most = lanes_all(STEP_COST_MOST), least = lanes_all(STEP_COST),
-                per_bin = lanes_all(STEP_COST_BIN);
-    lanes best = lanes_all(0), chosen = lanes_all(STEP_START);
-    for (int d = -(int)tracer->max_step; d <= (int)tracer->max_step; d++) {
-        const lanes score = lanes_load(tracer->before.score + (int)(MAX_STEP + k) - d);
-        const lanes slope = lanes_load(tracer->before.slope + (int)(MAX_STEP + k) - d);
-        const lanes step = lanes_all((float)d);
-        const lanes cost = lanes_least(least + per_bin * lanes_size(step - slope), most);
-        const lanes candidate = score - cost;
-        chosen = lanes_choose(candidate > best, step, chosen);
-        best = lanes_greatest(candidate, best);
-    }
-    const lane_mask steps = __builtin_convertvector(chosen, lane_mask);
-    const tile_bytes history = __builtin_convertvector(steps, tile_bytes);
-    lanes_store(tracer->best + k, best);
-    memcpy(tracer->step + k, &steps, sizeof steps);
-    memcpy(out_steps + k, &history, sizeof history);
-}
-
-/* Four cells begin paths, but for those that go on from another. */
-static inline void begin_cells(struct tracer *tracer, uint32_t at, const float *snrs)
-{
+    const wide_lanes most = WIDE_ALL(STEP_COST_MOST), none = {0};
+    const float ceiling = (float)tracer->setup.ceiling;
+    const int max_step = (int)tracer->max_step;
     struct cells *now = &tracer->now;
-    const lanes snr = lanes_load(snrs);
-    lanes_store(now->slope + at, lanes_all(0));
-    lanes_store(now->level + at, snr);
-    lanes_store(now->peak + at, snr);
-    for (uint32_t lane = 0; lane < TILE; lane++)
-        now->first[at + lane] = tracer->frame;
+    for (uint32_t k = 0; k < tracer->n_bins; k += WIDE_LANES) {
+        wide_lanes best = none, chosen = WIDE_ALL(STEP_START), score, slope, gain, snr;
+        for (int d = -max_step; d <= max_step; d++) {
+            wide_load(&score, tracer->before.score + (int)(MAX_STEP + k) - d);
+            wide_load(&slope, tracer->before.slope + (int)(MAX_STEP + k) - d);
+            const wide_lanes turn = (float)d - slope;
+            wide_lanes cost = STEP_COST + STEP_COST_BIN * WIDE_SIZE(turn);
+            cost = WIDE_CHOOSE(cost < most, cost, most);
+            const wide_lanes candidate = score - cost;
+            const wide_mask better = candidate > best;
+            chosen = WIDE_CHOOSE(better, WIDE_ALL((float)d), chosen);
+            best = WIDE_CHOOSE(better, candidate, best);
+        }
+        const wide_mask steps = __builtin_convertvector(chosen, wide_mask);
+        const wide_bytes history = __builtin_convertvector(steps, wide_bytes);
+        wide_store(tracer->best + k, &best);
+        memcpy(tracer->step + k, &steps, sizeof steps);
+        memcpy(out_steps + k, &history, sizeof history);
+        wide_load(&gain, tracer->gain + k);
+        best = WIDE_CHOOSE(best < ceiling, best, WIDE_ALL(ceiling)) + gain;
+        best = WIDE_CHOOSE(best > none, best, none);
+        wide_store(out_scores + k, &best);
+        wide_load(&snr, snrs + k);
+        wide_store(now->slope + k + MAX_STEP, &none);
+        wide_store(now->level + k + MAX_STEP, &snr);
+        wide_store(now->peak + k + MAX_STEP, &snr);
+    }
+    for (uint32_t at = MAX_STEP; at < tracer->stride + MAX_STEP; at++)
+        now->first[at] = tracer->frame;
 }
 
 static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr)
@@ -121,13 +127,7 @@ static void step_cells(struct tracer *tracer)
     const size_t row = (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     const float *snrs = tracer->history_snr + row;
     int8_t *steps = tracer->history_step + row;
-    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
-        find_best(tracer, k, steps);
-        const lanes best = lanes_load(tracer->best + k);
-        const lanes score = lanes_least(best, lanes_all(ceiling)) + lanes_load(tracer->gain + k);
-        lanes_store(scores + k, lanes_greatest(score, lanes_all(0)));
-        begin_cells(tracer, k + MAX_STEP, snrs + k);
-    }
+    find_best(tracer, snrs, steps, scores);
     for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
         scores[k] = 0; /* beyond the band nothing runs */
     memset(tracer->now.path, 0xff, (tracer->stride + 2 * MAX_STEP) * sizeof *tracer->now.path); /* NO_PATH */
