@@ -111,6 +111,13 @@ void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64
         give_held(trigger, sink);
 }
 
+bool trigger_is_idle(const struct trigger *trigger)
+{
+    uint32_t n;
+    pulse_search_get(trigger->search, &n);
+    return n == 0 && !trigger->holds;
+}
+
 double trigger_get_known(const struct trigger *trigger)
 {
     return trigger->holds ? trigger->held.frame : pulse_search_get_known(trigger->search);

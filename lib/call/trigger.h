@@ -41,6 +41,8 @@ void trigger_reset(struct trigger *trigger);
 /* Takes what the search has found in the block that it has just taken. Adds to rejections[REJECT_COUNT].
  * Pulses come in order of arrival, at most an echo time and a pulse's length late. */
 void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64_t *rejections);
+/* Whether there is nothing to take: nothing was found in the last block, and no pulse waits. */
+bool trigger_is_idle(const struct trigger *trigger);
 /* Gives the pulse that still waits for its echoes. */
 void trigger_finish(struct trigger *trigger, const struct pulse_sink *sink);
 /* Input frame, counted from the last reset, before which no pulse will come any more. */
