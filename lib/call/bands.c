@@ -12,7 +12,7 @@
 #define SPARE_BLOCKS                                                                                         \
     16                    /* for which a row has room at least before its history is moved to its front, ... \
                            */
-#define SPARE_HISTORIES 3 /* ... and so many times the history */
+#define SPARE_HISTORIES 1 /* ... and so many times the history */
 #define RESPONSE_POINTS 512
 #define SKIRT 4               /* times beyond a band is where its filter is looked at */
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */

@@ -7,7 +7,7 @@
 
 #define SPARE_BLOCKS                                                                                         \
     16 /* for which the row has room before its history is moved to its front, at least, ... */
-#define SPARE_HISTORIES 3 /* ... or so many times the history */
+#define SPARE_HISTORIES 1 /* ... or so many times the history */
 
 struct part {
     double share; /* of the band's width */
