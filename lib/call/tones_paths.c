@@ -140,8 +140,14 @@ static void step_cells(struct tracer *tracer)
             step_cell(tracer, at, snrs[at], ceiling);
         }
     }
-    for (uint32_t k = 0; k < tracer->n_bins && tracer->n_paths > 0; k++)
-        refute_cell(tracer, k, snrs[k]);
+    for (uint32_t k = 0; k < tracer->n_bins && tracer->n_paths > 0; k += TILE) {
+        uint64_t paths;
+        memcpy(&paths, tracer->now.path + MAX_STEP + k, sizeof paths);
+        if (paths == UINT64_MAX)
+            continue; /* all of them NO_PATH */
+        for (uint32_t j = k; j < k + TILE && j < tracer->n_bins; j++)
+            refute_cell(tracer, j, snrs[j]);
+    }
 }
 
 /* Nothing may go on from the cells of a path that has ended. */
