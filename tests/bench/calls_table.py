@@ -12,7 +12,7 @@ import sys
 
 from scipy import stats
 
-PIECES = ["pulses", "trains", "tones", "seas", "confounders", "pool", "costs"]
+PIECES = ["pulses", "trains", "tones", "seas", "confounders", "pool", "voices", "costs"]
 TONE_GOALS = {"right whale upcall": 4.0, "delphinid whistle": 6.0}
 BUDGET = 7.0
 MARKERS = ("<!-- table of bench-calls -->\n", "<!-- end of the table -->\n")
@@ -149,6 +149,25 @@ def delays(table, piece):
             row["n"], piece["seed"])
 
 
+def voices(table, piece):
+    """Each class by itself on its own call: found from what level, and when known."""
+    for row in piece["rows"]:
+        levels, shares = row["levels_db"], row["pd"]
+        reached = next((levels[i - 1] + (0.9 - shares[i - 1]) / (shares[i] - shares[i - 1]) * (levels[i] - levels[i - 1])
+                        for i in range(1, len(levels)) if shares[i] >= 0.9 > shares[i - 1]), None)
+        table.add("simulated call, Pd 0.9", row["class"], "%s (%s, at %g kHz)" % (
+            number(reached, "dB"), "envelope's peak over noise" if row["form"] == "train" else "cell over median noise",
+            row["rate_hz"] / 1000), "", None, row["trials"], piece["seed"])
+    for row in piece["rows"]:
+        if row["n_delays"] == 0:
+            continue
+        p50, p99, natural, rate = row["delay_p50_s"], row["delay_p99_s"], row["natural_delay_s"], row["rate_hz"]
+        table.add("class by itself: from a call's end to its entry", row["class"],
+                  "%.3f s (50th), %.3f s (99th): %d and %d samples at %g kHz" % (
+                      p50, p99, round(p50 * rate), round(p99 * rate), rate / 1000),
+                  "by design waits %.2f s, and at most 0.1 s" % natural, p99 <= natural + 0.1, row["n_delays"], piece["seed"])
+
+
 def upper(n):
     return stats.chi2.ppf(0.95, 2 * n + 2) / 2
 
@@ -241,7 +260,7 @@ def main():
     digest, pieces, stale = load(folder)
     table = Table()
     for name, rows in (("pulses", pulses), ("trains", trains), ("tones", tones), ("seas", seas), ("seas", calibration),
-                       ("seas", delays), ("costs", costs)):
+                       ("seas", delays), ("voices", voices), ("costs", costs)):
         if name in pieces:
             rows(table, pieces[name])
     rows = pieces.get("confounders", {"rows": []})["rows"] + pieces.get("pool", {"rows": []})["rows"]

@@ -26,6 +26,7 @@ struct calls_setup {
 json_t *calls_pulses(const struct calls_setup *setup);
 json_t *calls_trains(const struct calls_setup *setup);
 json_t *calls_tones(const struct calls_setup *setup);
+json_t *calls_voices(const struct calls_setup *setup);
 json_t *calls_costs(const struct calls_setup *setup);
 /* One sea (calls_seas_count of them), and one confounder (calls_confounders_count) for `hours`. */
 json_t *calls_sea(const struct calls_setup *setup, uint32_t number);
