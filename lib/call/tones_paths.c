@@ -213,6 +213,26 @@ static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
     }
 }
 
+static uint32_t bins_apart(uint32_t a, uint32_t b)
+{
+    return a > b ? a - b : b - a;
+}
+
+/* What began in the same frame, and is no further away than it could have come since, is a branch of the path
+ * in bin k. */
+static void claim_branches(struct tracer *tracer, uint32_t k, int16_t path)
+{
+    struct cells *now = &tracer->now;
+    const uint64_t first = now->first[k + MAX_STEP];
+    const uint64_t reach = (tracer->frame - first) * tracer->max_step;
+    for (uint32_t i = 0; i < tracer->n_bins; i++) {
+        const uint32_t at = i + MAX_STEP;
+        if (now->path[at] == NO_PATH && now->score[at] > 0 && now->first[at] == first &&
+            bins_apart(i, k) <= reach)
+            now->path[at] = path;
+    }
+}
+
 /* A cell whose score has reached the threshold and is the highest around begins a path, unless one is there
  * already: then it is the flank of that one. */
 static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink *sink)
@@ -237,6 +257,7 @@ static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink
                               .best_bin = k,
                               .tip = now->score[at],
                               .tip_bin = k};
+        claim_branches(tracer, k, (int16_t)i);
         now->path[at] = (int16_t)i;
         tracer->n_paths = i < tracer->n_paths ? tracer->n_paths : i + 1;
         return;
