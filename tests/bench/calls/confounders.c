@@ -100,39 +100,40 @@ static void fill_shrimp(struct scene *scene, struct random *random)
 static const struct confounder {
     const char *name;
     double rate_hz;
-    const char *heard_as; /* class; "impulse"; NULL: none has it yet */
+    const char *heard_as; /* class or classes; "impulse"; NULL: none has it yet */
     void (*fill)(struct scene *scene, struct random *random);
     double near_m, far_m; /* of an emitter of that kind */
     uint32_t n_channels;  /* 0: 1 */
-} confounders[] = {{"the sea alone", 48000, NULL, fill_nothing, 0, 0, 0},
-                   {"hammer", 48000, "impulse", fill_hammer, 0, 0, 0},
-                   {"airguns", 48000, "impulse", fill_airguns, 0, 0, 0},
-                   {"ship's lines", 16000, "ship line", fill_ship, 0, 0, 0},
-                   {"echosounder 12 or 18 kHz", 48000, "echosounder", fill_echosounder_low, 0, 0, 0},
-                   {"echosounder 38 or 50 kHz", 128000, "echosounder ping", fill_echosounder_middle, 0, 0, 0},
-                   {"echosounder 120 kHz", 384000, "echosounder ping", fill_echosounder_high, 0, 0, 0},
-                   {"snapping shrimp", 384000, "snapping shrimp", fill_shrimp, 0, 0, 0},
-                   {"naval sonar", 48000, "sonar ping", NULL, 2000, 20000, 0},
-                   {"hopping modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"chirp modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"janus modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"beacon", 96000, "beacon", NULL, 100, 2000, 0},
-                   {"net pinger", 48000, "net pinger", NULL, 50, 1000, 0},
-                   {"sweeping net pinger", 384000, "net pinger", NULL, 50, 1000, 0},
-                   {"deterrent", 384000, "deterrent device", NULL, 100, 2000, 0},
-                   {"charge", 48000, "charge", NULL, 500, 8000, 0},
-                   {"ship cavitation", 48000, "ship cavitation", NULL, 200, 3000, 0},
-                   {"rain", 96000, "rain", NULL, 0, 0, 0},
-                   {"flow noise", 8000, "flow noise", NULL, 0, 0, 2},
-                   {"thruster", 48000, "ship line", NULL, 100, 2000, 0},
-                   {"strum", 8000, "ship line", NULL, 0, 0, 0},
-                   {"mains pick-up", 8000, "electrical pick-up", NULL, 0, 0, 2},
-                   {"supply pick-up", 384000, "electrical pick-up", NULL, 0, 0, 2},
-                   {"fish hum", 8000, "fish hum", NULL, 3, 100, 0},
-                   {"fish grunts", 48000, "fish grunt", NULL, 3, 100, 0},
-                   {"fish knocks", 48000, NULL, NULL, 3, 100, 0},
-                   {"ice cracks", 48000, NULL, NULL, 200, 5000, 0},
-                   {"ice squeals", 16000, NULL, NULL, 200, 5000, 0}};
+} confounders[] = {
+    {"the sea alone", 48000, NULL, fill_nothing, 0, 0, 0},
+    {"hammer", 48000, "impulse", fill_hammer, 0, 0, 0},
+    {"airguns", 48000, "impulse", fill_airguns, 0, 0, 0},
+    {"ship's lines", 16000, "ship line", fill_ship, 0, 0, 0},
+    {"echosounder 12 or 18 kHz", 48000, "echosounder or beacon", fill_echosounder_low, 0, 0, 0},
+    {"echosounder 38 or 50 kHz", 128000, "echosounder ping", fill_echosounder_middle, 0, 0, 0},
+    {"echosounder 120 kHz", 384000, "echosounder ping", fill_echosounder_high, 0, 0, 0},
+    {"snapping shrimp", 384000, "snapping shrimp", fill_shrimp, 0, 0, 0},
+    {"naval sonar", 48000, "sonar ping", NULL, 2000, 20000, 0},
+    {"hopping modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"chirp modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"janus modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"beacon", 96000, "beacon", NULL, 100, 2000, 0},
+    {"net pinger", 48000, "net pinger", NULL, 50, 1000, 0},
+    {"sweeping net pinger", 384000, "net pinger", NULL, 50, 1000, 0},
+    {"deterrent", 384000, "deterrent device", NULL, 100, 2000, 0},
+    {"charge", 48000, "charge", NULL, 500, 8000, 0},
+    {"ship cavitation", 48000, "ship cavitation", NULL, 200, 3000, 0},
+    {"rain", 96000, "rain", NULL, 0, 0, 0},
+    {"flow noise", 8000, "flow noise", NULL, 0, 0, 2},
+    {"thruster", 48000, "ship line", NULL, 100, 2000, 0},
+    {"strum", 8000, "ship line", NULL, 0, 0, 0},
+    {"mains pick-up", 8000, "electrical pick-up", NULL, 0, 0, 2},
+    {"supply pick-up", 384000, "electrical pick-up", NULL, 0, 0, 2},
+    {"fish hum", 8000, "fish hum", NULL, 3, 100, 0},
+    {"fish grunts", 48000, "fish grunt", NULL, 3, 100, 0},
+    {"fish knocks", 48000, NULL, NULL, 3, 100, 0},
+    {"ice cracks", 48000, NULL, NULL, 200, 5000, 0},
+    {"ice squeals", 16000, NULL, NULL, 200, 5000, 0}};
 
 /* Levels within 6 dB of the usual, and frequencies of what lasts (of its first setting) within a third of an
  * octave: no two seas alike. */
