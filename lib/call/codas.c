@@ -221,6 +221,10 @@ void codas_push(struct codas *codas, const struct pulse *pulse, const struct tra
                 uint64_t *rejections)
 {
     codas_advance(codas, pulse->frame, sink, rejections);
+    if (pulse->foreign) {
+        rejections[REJECT_SHAPE]++;
+        return;
+    }
     codas->pulses[codas->n] = *pulse;
     codas->numbers[codas->n] = codas->n_pulses++;
     codas->hidden[codas->n++] = false;

@@ -39,5 +39,10 @@ void train_describe(const struct train_pulses *pulses, double *scratch, double *
 
 /* Whether pulses such as these can be of the class: centroid, length and sweep within its limits. */
 bool train_fits(const struct train *train, const struct train_shape *shape);
+/* Whether one pulse that looks so can be of the class: within the same limits, half as far again, of its
+ * sweep by as much as the noise lets it be known. */
+bool train_may_have(const struct pulse *pulse, const struct call_class *call_class);
+/* Whether it is narrower in frequency than any pulse of the class: a ping. */
+bool train_is_narrow(const struct pulse *pulse, const struct train_shape *shape);
 
 #endif

@@ -138,6 +138,8 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
     double jitter = trains_walked_jitter(trains, n);
     if (jitter > shape->max_jitter || (jitter < shape->min_jitter && n < MACHINE_PULSES))
         return;
+    if (node->pulse.foreign && jitter >= shape->min_jitter)
+        return;
     n = trains_find_certain(trains, n, shape->min_pulses + hidden);
     if (n == 0)
         return;
@@ -291,7 +293,8 @@ void trains_finish(struct trains *trains, const struct train_sink *sink, uint64_
         if (trains->open[t].number)
             end_train(trains, &trains->open[t], sink, rejections);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1); k--)
-        rejections[REJECT_NO_RHYTHM] += trains_node(trains, k - 1)->owner == 0;
+        rejections[trains_node(trains, k - 1)->pulse.foreign ? REJECT_SHAPE : REJECT_NO_RHYTHM] +=
+            trains_node(trains, k - 1)->owner == 0;
     trains_reset(trains);
 }
 

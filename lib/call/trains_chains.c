@@ -5,9 +5,9 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* Of the pulses around, this share counts as strays where chains are only compared: most may be the chain's
- * own. */
-#define RANK_SHARE 0.25
+/* Of the pulses around that are of no train yet, this share counts as strays where chains are only compared:
+ * the rest may be the chain's own. */
+#define RANK_SHARE 0.5
 
 double trains_fit_level(double difference_db, double spread_db)
 {
@@ -29,11 +29,11 @@ static void look_around(struct trains *trains, struct node *node)
         if (node->time_s - other->time_s > span_s)
             break;
         bool near = fabs(difference_db) <= LEVEL_GATE_DB;
-        double likeness = near ? pulse_shape_likeness(&node->pulse.shape, &other->pulse.shape) : 0;
+        double likeness = near ? trains_likeness(node, other) : 0;
         around->likeness[around->n++] = likeness;
         if (around->n == SAMPLED)
             span_s = node->time_s - other->time_s;
-        if (near && other->owner != HIDDEN)
+        if (near && other->owner == 0)
             sum += trains_fit_level(difference_db, LEVEL_DEVIATION_DB) * exp(likeness);
     }
     double rate = sum / fmax(span_s, trains->call_class.train.min_interval_s);
@@ -194,11 +194,11 @@ static void link_back(struct trains *trains, struct node *node)
         if (gap > MAX_STEP * shape->max_interval_s)
             break;
         if (gap >= shape->min_interval_s && from->owner != HIDDEN &&
+            from->pulse.foreign == node->pulse.foreign &&
             fabs(node->level_db - from->level_db) <= LEVEL_GATE_DB)
             link_from(trains, node, k - 1,
-                      last - k < trains->around.n
-                          ? trains->around.likeness[last - k]
-                          : pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape));
+                      last - k < trains->around.n ? trains->around.likeness[last - k]
+                                                  : trains_likeness(node, from));
     }
 }
 
@@ -206,7 +206,7 @@ void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t 
 {
     struct node *node = trains_node(trains, trains->n_pulses);
     if (trains->n_pulses >= RING && node->owner == 0)
-        rejections[REJECT_NO_RHYTHM]++;
+        rejections[node->pulse.foreign ? REJECT_SHAPE : REJECT_NO_RHYTHM]++;
     double time_s = pulse->frame / trains->rate_hz;
     node->time_s = time_s;
     node->pulse = *pulse;

@@ -18,7 +18,7 @@ static uint32_t competing_step(double level_db)
     return (uint32_t)fmin(COMPETING_STEPS - 1, fmax(0, level_db / COMPETING_STEP_DB));
 }
 
-static struct competitors gather_competitors(struct trains *trains, uint32_t n)
+static struct competitors gather_competitors(struct trains *trains, uint32_t n, uint32_t least)
 {
     double end = trains_node(trains, trains->members[0])->time_s;
     double start = trains_node(trains, trains->members[n - 1])->time_s;
@@ -26,7 +26,7 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
     struct competitors found = {0};
     uint32_t member = 0;
     const struct node *one = trains_node(trains, trains->members[0]);
-    const struct node *other = trains_node(trains, trains->members[n / 2]);
+    const struct node *other = trains_node(trains, trains->members[least / 2]); /* the first may be chance */
     double least_db = INFINITY, most_db = -INFINITY;
     for (uint32_t i = 0; i < n; i++) {
         double level_db = trains_node(trains, trains->members[i])->level_db;
@@ -138,7 +138,7 @@ static uint32_t find_surest(const struct trains *trains, const struct competitor
  * together. Levels are steady or sweep, at even odds. */
 uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 {
-    struct competitors found = gather_competitors(trains, n);
+    struct competitors found = gather_competitors(trains, n, least);
     double over = log(2);
     uint32_t wide = find_surest(trains, &found, n, least, LEVEL_DEVIATION_DB, &over);
     uint32_t steady = find_surest(trains, &found, n, least, STEADY_DEVIATION_DB, &over);

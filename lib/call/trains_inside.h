@@ -114,9 +114,15 @@ static inline bool trains_remember(const struct trains *trains, uint64_t number)
  * cost the chain, as a factor. Strays are counted with the very weights with which pulses are tied, so that
  * whatever levels and shapes the strays of a sea have, a step by chance has an expected ratio near 1. */
 double trains_fit_level(double difference_db, double spread_db);
+static inline double trains_likeness(const struct node *a, const struct node *b)
+{
+    if (a->pulse.foreign != b->pulse.foreign)
+        return -INFINITY;
+    return pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape);
+}
 static inline double trains_fit_shape(const struct node *a, const struct node *b)
 {
-    return exp(fmin(0, pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape)));
+    return exp(fmin(0, trains_likeness(a, b)));
 }
 
 /* Remembers a pulse and finds the chains that reach it, and how often pulses of its level come.
