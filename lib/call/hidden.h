@@ -1,5 +1,5 @@
 /* The last stretches of time in which the own source covers a band: a pulse may become known after the
- * stretch that it lies in. Used by pulses.c and tones_unheard.c only. */
+ * stretch that it lies in. Used by pulses.c, trains.c and tones_unheard.c only. */
 #ifndef CALL_HIDDEN_H
 #define CALL_HIDDEN_H
 
@@ -35,6 +35,15 @@ static inline bool hidden_has(const struct hidden *hidden, double frame)
 {
     for (uint32_t i = 0; i < HIDDEN_REMEMBERED && i < hidden->n; i++)
         if (frame >= hidden->start[i] && frame <= hidden->end[i])
+            return true;
+    return false;
+}
+
+/* Whether a stretch lies within so much of it. */
+static inline bool hidden_is_near(const struct hidden *hidden, double frame, double reach)
+{
+    for (uint32_t i = 0; i < HIDDEN_REMEMBERED && i < hidden->n; i++)
+        if (frame >= hidden->start[i] - reach && frame <= hidden->end[i] + reach)
             return true;
     return false;
 }

@@ -33,6 +33,7 @@ enum status trains_create(const struct call_class *call_class, double rate_hz, s
     trains->deviation[WIDE] = shape->max_jitter;
     for (int spread = NARROW; spread <= WIDE; spread++)
         trains->ln_peak[spread] = -log(sqrt(2 * M_PI) * trains->deviation[spread]);
+    trains->ln_unmissed = -log(1 - DETECTED);
     for (int m = 1; m <= MAX_STEP; m++) {
         trains->ln_m[m] = log(m);
         trains->ln_steps[m] = log(DETECTED) + (m - 1) * log(1 - DETECTED);
@@ -55,6 +56,7 @@ void trains_reset(struct trains *trains)
 {
     memset(trains->open, 0, sizeof trains->open);
     trains->n_pulses = 0;
+    trains->hidden = (struct hidden){0};
 }
 
 static bool train_is_open(const struct trains *trains, uint32_t number)
@@ -300,6 +302,7 @@ void trains_finish(struct trains *trains, const struct train_sink *sink, uint64_
 
 void trains_hide(struct trains *trains, double start_frame, double end_frame, uint64_t *rejections)
 {
+    hidden_add(&trains->hidden, start_frame / trains->rate_hz, end_frame / trains->rate_hz);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1); k--) {
         struct node *node = trains_node(trains, k - 1);
         if (node->pulse.frame < start_frame)

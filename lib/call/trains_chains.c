@@ -101,6 +101,37 @@ static struct link first_pair(uint64_t number, const struct node *from, const st
                          .rank = score - from->ln_rate - node->ln_rate};
 }
 
+/* How many of the m - 1 beats that were missed after `from` the own source covers, or its echo: nobody could
+ * have heard them. */
+static uint32_t hidden_beats(const struct trains *trains, const struct node *from, double step_s, uint32_t m)
+{
+    uint32_t n = 0;
+    for (uint32_t i = 1; i < m && trains->hidden.n > 0; i++)
+        n += hidden_is_near(&trains->hidden, from->time_s + i * step_s, trains->call_class.train.echo_s);
+    return n;
+}
+
+/* The number of intervals and what it costs; where beats are hidden more of them may be likelier than where
+ * each that is missed speaks against the train. */
+static uint32_t choose_steps(const struct trains *trains, const struct node *from, double interval,
+                             double ratio, double *ln_steps)
+{
+    uint32_t m = likeliest_steps(trains, ratio), best = m;
+    double most = -INFINITY;
+    for (uint32_t k = m; k == m || (trains->hidden.n > 0 && k <= MAX_STEP); k++) {
+        double d = ratio - trains->ln_m[k];
+        double missed =
+            trains->ln_steps[k] + hidden_beats(trains, from, interval / k, k) * trains->ln_unmissed;
+        double fit = missed + fmax(ln_density(trains, NARROW, d), ln_density(trains, WIDE, d));
+        if (fit > most) {
+            most = fit;
+            best = k;
+            *ln_steps = missed;
+        }
+    }
+    return best;
+}
+
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
 static void link_from(const struct trains *trains, struct node *node, uint64_t number, double likeness)
 {
@@ -117,13 +148,14 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
         if (from->owner && link->train != from->owner)
             continue;
         double ratio = ln_interval - link->ln_interval;
-        uint32_t m = likeliest_steps(trains, ratio);
+        double ln_steps = 0;
+        uint32_t m = choose_steps(trains, from, interval, ratio, &ln_steps);
         double d = ratio - trains->ln_m[m];
         double step_s = interval / m; /* a chain may drift, but not out of its class */
         if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
             step_s > shape->max_interval_s)
             continue;
-        double common = trains->ln_steps[m] - ln_interval - cost;
+        double common = ln_steps - ln_interval - cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
         double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
         double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - node->ln_rate;

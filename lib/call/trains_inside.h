@@ -3,6 +3,7 @@
 #ifndef CALL_TRAINS_INSIDE_H
 #define CALL_TRAINS_INSIDE_H
 
+#include "call/hidden.h"
 #include "call/trains.h"
 #include <math.h>
 #include <stdbool.h>
@@ -81,12 +82,14 @@ struct trains {
     struct noise_rate noise;
     double ln_peak[2], deviation[2]; /* of ln(interval ratio): a quarter of max_jitter, and max_jitter */
     double ln_steps[MAX_STEP + 1];   /* ln p_d (1 - p_d)^(m - 1) */
+    double ln_unmissed;              /* that a beat which nobody could hear is no miss */
     double ln_m[MAX_STEP + 1];
     double ln_limit[MAX_STEP]; /* ln of an interval's ratio from which m + 1 steps are likelier than m */
     double ln_range;           /* ln of ln(max / min interval) */
     struct around around;
     uint64_t n_pulses; /* taken */
     uint32_t n_trains;
+    struct hidden hidden; /* s */
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
