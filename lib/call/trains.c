@@ -275,16 +275,20 @@ void trains_push(struct trains *trains, const struct pulse *pulse, const struct 
         try_to_open(trains, best, sink, rejections);
 }
 
+/* Whether a train has been silent too long since that pulse of it. */
+static bool is_silent_since(const struct trains *trains, uint64_t number, uint32_t link, double time_s)
+{
+    const struct node *node = trains_node(trains, number);
+    return !trains_remember(trains, number) ||
+           time_s - node->time_s > END_INTERVALS * exp(node->links[link].ln_interval);
+}
+
+/* What has added nothing to a train for as long as silence ends it is chance, and does not hold it back. */
 void trains_advance(struct trains *trains, double frame, const struct train_sink *sink, uint64_t *rejections)
 {
     for (int t = 0; t < MAX_OPEN; t++) {
         struct open_train *open = &trains->open[t];
-        if (!open->number)
-            continue;
-        const struct node *end = trains_node(trains, open->last);
-        double interval = exp(end->links[open->last_link].ln_interval);
-        if (!trains_remember(trains, open->last) ||
-            frame / trains->rate_hz - end->time_s > END_INTERVALS * interval)
+        if (open->number && is_silent_since(trains, open->best, open->best_link, frame / trains->rate_hz))
             end_train(trains, open, sink, rejections);
     }
 }
