@@ -146,6 +146,7 @@ static void take_train(void *context, const struct train *train)
         .mean_square_pa2 =
             (train->end_energy - train->start_energy) / fmax(1, train->end_frame - train->start_frame),
     };
+    train_measure(train, ear->call_class, found.measures);
     hearing->pulses->given = train;
     hearing->pulses->sink->take(hearing->pulses->sink->context, &found);
     hearing->pulses->given = NULL;

@@ -1,5 +1,7 @@
 /* From contours to calls; see tones_judge.h. */
 #include "call/tones_judge.h"
+#include "base/units.h"
+#include "call/certainty.h"
 #include "call/tones_related.h"
 #include <math.h>
 #include <string.h>
@@ -267,6 +269,27 @@ bool judge_is_due(const struct judge *judge, double frame)
     return false;
 }
 
+/* What its certainty rests on: its strongest contour in the class's window. */
+static void measure(const struct judge *judge, const struct sound *sound, struct found_call *out)
+{
+    const struct judged_class *best = &judge->classes[out->class_index];
+    const struct tone_shape *shape = &best->class->tone;
+    const struct contour *c = NULL;
+    for (uint32_t i = 0; i < sound->n_members; i++) {
+        const struct contour *member = &sound->members[i];
+        if (member->tracer == best->tracer && (!c || weight_of(member) > weight_of(c)))
+            c = member;
+    }
+    if (!c)
+        return;
+    out->measures[TONE_LENGTH] = log(fmax(0.1, c->seconds / shape->min_s));
+    out->measures[TONE_BEND] = log(0.1 + c->bend_hz / c->bin_hz);
+    out->measures[TONE_JUMP] = log(0.1 + c->jump_hz / c->bin_hz);
+    out->measures[TONE_OCCUPANCY] = log(0.01 + c->occupancy);
+    out->measures[TONE_CONTRAST] = units_power_db(c->contrast);
+    out->measures[TONE_STRENGTH] = fmin(15, out->snr_db - shape->min_snr_db);
+}
+
 static void give(const struct judge *judge, struct sound *sound, uint64_t known_frame,
                  const struct found_sink *sink)
 {
@@ -282,6 +305,7 @@ static void give(const struct judge *judge, struct sound *sound, uint64_t known_
                                .high_hz = sound->high_hz,
                                .snr_db = 10 * log10(sound->snr_weight / sound->weight),
                                .mean_square_pa2 = energy / (sound->end_frame - sound->start_frame)};
+    measure(judge, sound, &found);
     sound->given = true;
     sink->take(sink->context, &found);
 }

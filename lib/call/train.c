@@ -6,6 +6,8 @@
 
 #define BENEFIT 1.5 /* of the doubt, for one pulse beside the median of many: a judgement, no source */
 #define DOUBTS 2.0  /* standard deviations, likewise */
+#include "call/certainty.h"
+#include <math.h>
 
 static double snr_of(const struct pulse *pulse)
 {
@@ -85,4 +87,14 @@ bool train_may_have(const struct pulse *pulse, const struct call_class *call_cla
     return !train_is_narrow(pulse, shape) && bandwidth_hz <= shape->max_bandwidth_hz * BENEFIT &&
            length_s * BENEFIT >= shape->min_length_s && length_s <= shape->max_length_s * BENEFIT &&
            sweep_hz_s + doubt >= shape->min_sweep_hz_s && sweep_hz_s - doubt <= shape->max_sweep_hz_s;
+void train_measure(const struct train *train, const struct call_class *call_class, double out[CALL_MEASURES])
+{
+    const struct train_shape *shape = &call_class->train;
+    out[TRAIN_EXCESS] = log1p(fmax(0, train->excess));
+    out[TRAIN_STRAYS] = log(0.1 + train->strays);
+    out[TRAIN_JITTER] = log(0.01 + train->jitter / shape->max_jitter);
+    out[TRAIN_LIKENESS] = train->likeness;
+    out[TRAIN_LENGTH] = fabs(log(fmax(1e-6, train->length_s) / shape->pulse_s));
+    out[TRAIN_BANDWIDTH] = log(fmax(1e-3, train->bandwidth_hz / (call_class->high_hz - call_class->low_hz)));
+    out[TRAIN_STRENGTH] = fmin(30, train->snr_db - shape->min_snr_db);
 }

@@ -81,6 +81,16 @@ static const struct pulse *member_of(const void *context, uint32_t i)
     return &trains_node(trains, trains->members[i])->pulse;
 }
 
+/* How far from chance a train is by now. */
+static void describe_chance(const struct trains *trains, const struct open_train *open, struct train *out)
+{
+    const struct link *link = &trains_node(trains, open->last)->links[open->last_link];
+    double rate = open->strays_s > 0 ? open->strays / open->strays_s : open->strays_hz;
+    out->excess = open->excess + open->best_total;
+    out->strays = rate * out->interval_frames / trains->rate_hz;
+    out->likeness = link->n > 1 ? link->alike / (link->n - 1) : 0;
+}
+
 /* Gives what is new of a train. */
 static void give(struct trains *trains, struct open_train *open, const struct train_sink *sink,
                  uint64_t *rejections)
@@ -115,6 +125,7 @@ static void give(struct trains *trains, struct open_train *open, const struct tr
     open->given = open->last;
     open->given_time_s = trains_node(trains, open->last)->time_s;
     train.machine = steady;
+    describe_chance(trains, open, &train);
     sink->take(sink->context, &train);
 }
 
@@ -155,7 +166,9 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
                                 .last_link = best,
                                 .evidence = MOST_EVIDENCE,
                                 .best = number,
-                                .best_link = best};
+                                .best_link = best,
+                                .excess = trains->certain_excess,
+                                .strays_hz = trains->certain_strays_hz};
     open->given = trains->members[n - 1] - 1; /* wraps to "none" before the very first pulse */
     link->train = open->number;
     give(trains, open, sink, rejections);

@@ -142,6 +142,12 @@ uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
     double over = log(2);
     uint32_t wide = find_surest(trains, &found, n, least, LEVEL_DEVIATION_DB, &over);
     uint32_t steady = find_surest(trains, &found, n, least, STEADY_DEVIATION_DB, &over);
+    if (steady == 0 && wide == 0)
+        return 0;
+    const struct node *newest = trains_node(trains, trains->members[0]);
+    double spread_db = steady ? STEADY_DEVIATION_DB : LEVEL_DEVIATION_DB;
+    trains->certain_excess = over - log(2);
+    trains->certain_strays_hz = competing_rate(trains, newest, spread_db, &found, n);
     return steady ? steady : wide;
 }
 

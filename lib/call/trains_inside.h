@@ -67,6 +67,7 @@ struct open_train {
     double total, best_total; /* the same without limits, and where it was greatest: */
     uint64_t best;            /* pulse and link there: what follows, if the train ends, was chance */
     uint32_t best_link;
+    double excess, strays_hz; /* when it was opened */
     bool machine;
 };
 
@@ -96,6 +97,7 @@ struct trains {
     float competing[COMPETING_STEPS]; /* strays by level, by how well they could take a member's place */
     double sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
+    double certain_excess, certain_strays_hz; /* of what trains_find_certain found last */
 };
 
 static inline struct node *trains_node(const struct trains *trains, uint64_t number)

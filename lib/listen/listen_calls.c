@@ -1,5 +1,6 @@
 /* Calls and what is no animal's: joined over the channels, withheld or given; see listen.h. */
 #include "base/units.h"
+#include "call/certainty.h"
 #include "listen/listen_inner.h"
 #include <math.h>
 #include <string.h>
@@ -54,6 +55,7 @@ static struct event *add_call(struct listen *listen, const struct joined_call *j
         .mirror_deg = NAN,
         .certainty = class->certainty,
         .evidence = class->evidence};
+    memcpy(call->measures, found->measures, sizeof call->measures);
     memcpy(call->class_name, class->name, sizeof call->class_name);
     return event;
 }
@@ -127,11 +129,12 @@ static void take_joined(void *context, const struct joined_call *joined)
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
     const struct catalogue *catalogue = listen->setup.catalogue;
-    bool animal = catalogue->classes[found->class_index].animal;
+    const struct call_class *class = &catalogue->classes[found->class_index];
+    bool animal = class->animal;
     if (animal && is_hidden(listen, found))
         return;
-    double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
-    if (animal && evidence <= 0 && catalogue->classes[found->class_index].evidence > 0) {
+    double left = animal ? covers_evidence(&listen->covers, found) : 0; /* of the most that one call has */
+    if (animal && left <= 0 && class->evidence > 0) {
         listen->n_covered[found->class_index]++;
         return;
     }
@@ -141,7 +144,10 @@ static void take_joined(void *context, const struct joined_call *joined)
         return;
     }
     struct event *event = add_call(listen, joined);
-    event->as.call.evidence = fmin(evidence, most_evidence(listen, found));
+    double certainty = certainty_find(&catalogue->certainty, class, found->measures);
+    double says = fmin(certainty_evidence(certainty, class), most_evidence(listen, found));
+    event->as.call.certainty = certainty;
+    event->as.call.evidence = fmax(0, says - (class->evidence - left));
     covers_keep_call(&listen->covers, found, event->counter);
 }
 
