@@ -3,7 +3,7 @@
  * tests/bench/calls_table.py prints the table of all.
  *
  * usage: calls_bench OUT_FOLDER [PIECE] [SEED] [SCALE] [BUDGET_S]
- *   PIECE     pulses, trains, tones, voices, seas, confounders, costs; "all" those without a result; "sweep"
+ *   PIECE     pulses, trains, tones, voices, seas, confounders, costs, mixed; "all" those without a result; "sweep"
  *             those of them that the plot shows; "pool" goes on with confounders, 20 min of each in turn,
  *             until BUDGET_S have passed or 10 days are pooled
  *             the name of a confounder runs that for SCALE hours and prints what came of it
@@ -119,6 +119,16 @@ static json_t *all_confounders(const struct calls_setup *setup)
     return json_pack("{s:o}", "rows", rows);
 }
 
+/* Seas of a few minutes each, all different. */
+static json_t *all_mixed(const struct calls_setup *setup)
+{
+    json_t *rows = json_array();
+    for (uint32_t i = 0; i < calls_trials(setup, 200, 1); i++)
+        if (json_array_append_new(rows, calls_mixed(setup, i)) != 0)
+            return NULL;
+    return json_pack("{s:o}", "rows", rows);
+}
+
 static const struct piece {
     const char *name;
     json_t *(*run)(const struct calls_setup *setup);
@@ -126,7 +136,7 @@ static const struct piece {
 } pieces[] = {{"pulses", calls_pulses, true}, {"trains", calls_trains, true},
               {"tones", calls_tones, true},   {"voices", calls_voices, true},
               {"seas", all_seas, false},      {"confounders", all_confounders, false},
-              {"costs", calls_costs, false}};
+              {"costs", calls_costs, false},   {"mixed", all_mixed, false}};
 
 static double hours_of(const json_t *rows, const char *sound)
 {
