@@ -2,12 +2,11 @@
 #include "call/train.h"
 #include "base/median.h"
 #include "base/units.h"
+#include "call/certainty.h"
 #include <math.h>
 
 #define BENEFIT 1.5 /* of the doubt, for one pulse beside the median of many: a judgement, no source */
 #define DOUBTS 2.0  /* standard deviations, likewise */
-#include "call/certainty.h"
-#include <math.h>
 
 static double snr_of(const struct pulse *pulse)
 {
@@ -87,6 +86,8 @@ bool train_may_have(const struct pulse *pulse, const struct call_class *call_cla
     return !train_is_narrow(pulse, shape) && bandwidth_hz <= shape->max_bandwidth_hz * BENEFIT &&
            length_s * BENEFIT >= shape->min_length_s && length_s <= shape->max_length_s * BENEFIT &&
            sweep_hz_s + doubt >= shape->min_sweep_hz_s && sweep_hz_s - doubt <= shape->max_sweep_hz_s;
+}
+
 void train_measure(const struct train *train, const struct call_class *call_class, double out[CALL_MEASURES])
 {
     const struct train_shape *shape = &call_class->train;
