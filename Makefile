@@ -115,16 +115,18 @@ bench: install-test-needs
 	@for b in $(BENCH_PROGRAMS); do $$b || exit 1; done
 
 # What the detectors can do: PIECE of the bench (tests/bench/calls/main.c), SEED (0: the day's number), SCALE; what is
-# measured stays in build/bench-calls, so that it can be stopped and taken up again. PIECE=sweep draws the plot
-# and writes the table in docs anew from it.
+# measured stays in build/bench-calls, so that it can be stopped and taken up again. PIECE=sweep measures what the plot
+# needs and has not (at SWEEP_SCALE), draws it and writes the table in docs anew.
 PIECE ?= all
 SEED ?= 0
 SCALE ?= 1
+SWEEP_SCALE ?= 0.25
 BUDGET_S ?= 1200
 bench-calls: install-test-needs
 	@$(MAKE) --no-print-directory -j2 $(BUILD)/tests/bench/calls/main
 	@mkdir -p $(BUILD)/bench-calls
 ifeq ($(PIECE),sweep)
+	@$(BUILD)/tests/bench/calls/main $(BUILD)/bench-calls sweep $(SEED) $(SWEEP_SCALE)
 	@/usr/bin/python3 tests/bench/calls_sweep.py $(BUILD)/bench-calls docs/detectors-sweep.svg
 	@/usr/bin/python3 tests/bench/calls_table.py $(BUILD)/bench-calls docs/detectors.md >/dev/null
 else

@@ -38,6 +38,23 @@ static void check_limits(const struct site *site, const struct rules *rules, str
                          rules->permit.criteria[i]);
 }
 
+/* What the site leaves to the catalogue. */
+static void take_grades(const struct certainty_table *table, struct site *site, struct problems *problems)
+{
+    bool own = site->look_evidence > 0 || site->act_evidence > 0;
+    if (!(site->look_evidence > 0))
+        site->look_evidence = table->look_evidence;
+    if (!(site->act_evidence > 0))
+        site->act_evidence = table->act_evidence;
+    if (!(site->evidence_decay_s > 0))
+        site->evidence_decay_s = table->evidence_decay_s;
+    if (own && site->act_evidence < site->look_evidence)
+        problems_add(
+            problems, site->calls, 0, "grades",
+            "with the settings' contact: look_evidence is %g and act_evidence %g; allowed: at least as much",
+            site->look_evidence, site->act_evidence);
+}
+
 enum status rules_load(struct site *site, struct problems *problems, struct rules **out)
 {
     unsigned before = problems->count;
@@ -55,6 +72,8 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
     if (permit == STATUS_OK && criteria == STATUS_OK)
         check_limits(site, rules, problems);
     enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
+    if (calls == STATUS_OK)
+        take_grades(&rules->catalogue.certainty, site, problems);
     if (problems->count != before)
         status = STATUS_BAD_FORMAT;
     if (status != STATUS_OK) {

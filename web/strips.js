@@ -195,7 +195,7 @@ export function drawStrips() {
 function listCalls() {
   if (!link.state) return;
   keyed(document.getElementById("calls"), link.state.calls.slice(0, 12), (call) => call.id, () => el("li"), (node, call) =>
-    setText(node, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}, ${bandText(call.low_hz, call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
+    setText(node, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}${call.group === "unknown" ? "" : `, ${call.certainty}`}, ${bandText(call.low_hz, call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
       (call.n_pulses ? `, ${call.n_pulses} pulses` : "") + `, ${call.snr_db.toFixed(0)} dB above the background, ${call.level_db.toFixed(0)} dB${call.relative ? " rel." : " re 1 µPa"}, channel ${call.channel}`));
 }
 

@@ -2,6 +2,7 @@
 #include "base/round.h"
 #include "base/time.h"
 #include "base/units.h"
+#include "call/certainty.h"
 #include "http/board_json.h"
 #include <math.h>
 
@@ -155,7 +156,7 @@ static void one_call(struct text *text, const struct hearing_call *heard)
     json_number(text, "bearing_deg", call->bearing_deg, 1);
     json_number(text, "mirror_deg", call->mirror_deg, 1);
     json_text(text, "bearing_from", bearing_from_text(call->bearing_from));
-    json_number(text, "certainty", call->certainty, 3);
+    json_text(text, "certainty", certainty_text(call->certainty));
     text_append(text, "}");
 }
 

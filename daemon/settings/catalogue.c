@@ -1,5 +1,6 @@
 /* The call catalogue's loader; see catalogue.h. docs/settings.md lists the keys with their meaning. */
 #include "settings/catalogue.h"
+#include "call/certainty.h"
 #include <dirent.h>
 #include <math.h>
 #include <stdio.h>
@@ -202,17 +203,68 @@ static void read_class(struct group_reader *root, struct call_class *class)
         group_done(root);
 }
 
-static void load_class(const char *path, struct problems *problems, struct text *effective,
-                       struct catalogue *catalogue)
+/* Weight and usual value of each measure; none that is absent counts. */
+static void read_form(struct group_reader *root, const char *key, enum call_form form,
+                      struct certainty_form *out)
+{
+    struct group_reader group;
+    if (!group_child(root, key, READER_REQUIRED, &group))
+        return;
+    const char *name;
+    for (uint32_t i = 0; (name = certainty_measure_name(form, i)); i++) {
+        double pair[2] = {0, 0};
+        unsigned n = group_numbers(&group, name, READER_OPTIONAL, -1000, 1000, pair, 2);
+        if (n == 1)
+            group_problem(&group, name, "has 1 number; allowed: [weight, usual value]");
+        out->weight[i] = pair[0];
+        out->usual[i] = pair[1];
+    }
+    group_done(&group);
+}
+
+static void read_certainty(struct group_reader *root, struct certainty_table *out)
+{
+    struct group_reader grades;
+    char source[CATALOGUE_TEXT_SIZE];
+    group_string(root, "source", READER_REQUIRED, source, sizeof source);
+    read_form(root, "tone", CALL_TONE, &out->tone);
+    read_form(root, "train", CALL_TRAIN, &out->train);
+    if (group_child(root, "grades", READER_REQUIRED, &grades)) {
+        group_number(&grades, "look_evidence", READER_REQUIRED, 0, 100, &out->look_evidence);
+        group_number(&grades, "look_false_per_hour", READER_REQUIRED, 0, 1000, &out->look_false_per_hour);
+        group_number(&grades, "act_evidence", READER_REQUIRED, 0, 100, &out->act_evidence);
+        group_number(&grades, "act_false_per_day", READER_REQUIRED, 0, 1000, &out->act_false_per_day);
+        group_number(&grades, "evidence_decay_s", READER_REQUIRED, 1, 86400, &out->evidence_decay_s);
+        if (out->act_evidence < out->look_evidence)
+            group_problem(&grades, "act_evidence", "is %g; allowed: at least look_evidence, %g",
+                          out->act_evidence, out->look_evidence);
+        group_done(&grades);
+    }
+    group_done(root);
+}
+
+static bool is_certainty_file(const char *path)
+{
+    const char *name = strrchr(path, '/');
+    return strcmp(name ? name + 1 : path, CATALOGUE_CERTAINTY_FILE) == 0;
+}
+
+static void load_file(const char *path, struct problems *problems, struct text *effective,
+                      struct catalogue *catalogue)
 {
     struct reader reader;
-    if (catalogue->n_classes == CATALOGUE_MAX_CLASSES) {
+    bool is_class = !is_certainty_file(path);
+    if (is_class && catalogue->n_classes == CATALOGUE_MAX_CLASSES) {
         problems_add(problems, path, 0, "", "is one class too many; allowed: %d", CATALOGUE_MAX_CLASSES);
         return;
     }
     if (effective)
         text_format(effective, "# %s\n", path);
-    if (reader_open(&reader, path, problems, effective) == STATUS_OK) {
+    enum status status = reader_open(&reader, path, problems, effective);
+    if (status == STATUS_OK && !is_class) {
+        struct group_reader root = reader_root(&reader);
+        read_certainty(&root, &catalogue->certainty);
+    } else if (status == STATUS_OK) {
         struct call_class *class = &catalogue->classes[catalogue->n_classes];
         struct group_reader root = reader_root(&reader);
         read_class(&root, class);
@@ -249,13 +301,19 @@ enum status catalogue_load(const char *folder, struct problems *problems, struct
         return STATUS_NOT_FOUND;
     }
     struct catalogue *catalogue = calloc(1, sizeof *catalogue);
+    if (catalogue)
+        catalogue->certainty = (struct certainty_table){.look_evidence = 1,
+                                                        .act_evidence = 3,
+                                                        .look_false_per_hour = NAN,
+                                                        .act_false_per_day = NAN,
+                                                        .evidence_decay_s = 180};
     for (int i = 0; i < n; i++) {
         char path[PATH_SIZE];
         int length = snprintf(path, sizeof path, "%s/%s", folder, entries[i]->d_name);
         if (catalogue && length >= (int)sizeof path)
             problems_add(problems, folder, 0, "", "has too long a path; allowed: %d bytes", PATH_SIZE - 1);
         else if (catalogue)
-            load_class(path, problems, effective, catalogue);
+            load_file(path, problems, effective, catalogue);
         free(entries[i]);
     }
     free(entries);

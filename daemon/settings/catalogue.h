@@ -1,4 +1,5 @@
-/* Loads the call catalogue: a folder of *.cfg files, one call class each. */
+/* Loads the call catalogue: a folder of *.cfg files, one call class each, and what their certainty rests on.
+ */
 #ifndef SETTINGS_CATALOGUE_H
 #define SETTINGS_CATALOGUE_H
 
@@ -6,6 +7,10 @@
 #include "base/text.h"
 #include "call/catalogue.h"
 #include "settings/reader.h"
+
+/* Weights of what is measured of calls, and grades of contacts; where it is absent the measures say nothing
+ * and the grades are 1, 3 and 180 s. */
+#define CATALOGUE_CERTAINTY_FILE "certainty.cfg"
 
 /* Reads every *.cfg of the folder in the byte order of the file names; a class's index is its place in that
  * order. Adds a line to `problems` for everything that is wrong (file, line, key, what is allowed), a name

@@ -246,9 +246,9 @@ static void read_evidence(struct group_reader *root, struct site *site)
     group_number(&contact, "gap_s", READER_OPTIONAL, 1, 86400, &site->contact_gap_s);
     group_number(&contact, "look_evidence", READER_OPTIONAL, 0, 100, &site->look_evidence);
     group_number(&contact, "act_evidence", READER_OPTIONAL, 0, 100, &site->act_evidence);
-    group_number(&contact, "evidence_decay_s", READER_OPTIONAL, 1, 86400, &site->evidence_decay_s);
+    group_number(&contact, "evidence_decay_s", READER_OPTIONAL, 0, 86400, &site->evidence_decay_s);
     group_number(&contact, "sighting_log_spread", READER_OPTIONAL, 0.001, 2, &site->sighting_log_spread);
-    if (site->act_evidence < site->look_evidence)
+    if (site->act_evidence > 0 && site->act_evidence < site->look_evidence)
         group_problem(&contact, "act_evidence", "is %g; allowed: at least look_evidence, %g",
                       site->act_evidence, site->look_evidence);
     group_done(&contact);
@@ -265,13 +265,8 @@ static unsigned count_free(const struct site *site)
 
 static void set_defaults(const char *path, struct site *site)
 {
-    *site = (struct site){.contact_gap_s = 300,
-                          .look_evidence = 1.0,
-                          .act_evidence = 3.0,
-                          .evidence_decay_s = 180,
-                          .sighting_log_spread = 0.15,
-                          .silence_s = 120,
-                          .address = "127.0.0.1"};
+    *site = (struct site){
+        .contact_gap_s = 300, .sighting_log_spread = 0.15, .silence_s = 120, .address = "127.0.0.1"};
     const char *slash = strrchr(path, '/');
     if (slash)
         snprintf(site->folder, sizeof site->folder, "%.*s", (int)(slash == path ? 1 : slash - path), path);

@@ -64,7 +64,7 @@ struct site {
     uint32_t n_streams;
     struct stream_settings streams[SITE_MAX_STREAMS];
     double contact_gap_s;
-    double look_evidence, act_evidence, evidence_decay_s;
+    double look_evidence, act_evidence, evidence_decay_s; /* 0: as the catalogue says (rules_load) */
     double sighting_log_spread;
     double silence_s;
     struct text effective; /* every setting with its value, one a line */

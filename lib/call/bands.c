@@ -12,7 +12,7 @@
 #define SPARE_BLOCKS                                                                                         \
     16                    /* for which a row has room at least before its history is moved to its front, ... \
                            */
-#define SPARE_HISTORIES 3 /* ... and so many times the history */
+#define SPARE_HISTORIES 1 /* ... and so many times the history */
 #define RESPONSE_POINTS 512
 #define SKIRT 4               /* times beyond a band is where its filter is looked at */
 #define RESPONSE_FRAMES 32768 /* the impulse response is followed for this long at most */
@@ -138,6 +138,19 @@ static void fill_matrix(const double *r, uint32_t n, uint32_t m, double *out)
         }
 }
 
+/* Four sums side by side. */
+static double inner_product(const double *a, const double *b, uint32_t n)
+{
+    double sums[4] = {0, 0, 0, 0};
+    uint32_t k = 0;
+    for (; k + 4 <= n; k += 4)
+        for (uint32_t l = 0; l < 4; l++)
+            sums[l] += a[k + l] * b[k + l];
+    for (; k < n; k++)
+        sums[0] += a[k] * b[k];
+    return (sums[0] + sums[1]) + (sums[2] + sums[3]);
+}
+
 /* Traces of the first powers of R: m, tr R^2, tr R^3. The sum of squares of Gaussian variables so correlated
  * has the cumulants m, 2 tr R^2, 8 tr R^3. */
 enum status bands_get_statistics(const struct bands *bands, const struct band_parts *parts, uint32_t n_slots,
@@ -153,12 +166,10 @@ enum status bands_get_statistics(const struct bands *bands, const struct band_pa
         fill_correlations(responses, frames, m, r);
         fill_matrix(r, parts->n, m, matrix);
         for (uint32_t i = 0; i < n; i++)
-            for (uint32_t j = 0; j < n; j++) {
-                double ij = matrix[i * n + j], inner = 0;
-                for (uint32_t k = 0; k < n; k++) /* R is symmetric */
-                    inner += matrix[j * n + k] * matrix[i * n + k];
-                square += ij * ij;
-                cube += ij * inner;
+            for (uint32_t j = 0; j <= i; j++) { /* R is symmetric, and so is its square */
+                const double ij = matrix[i * n + j] * (j < i ? 2 : 1);
+                square += ij * matrix[i * n + j];
+                cube += ij * inner_product(matrix + (size_t)j * n, matrix + (size_t)i * n, n);
             }
         out->freedom = (double)m * m / square;
         out->skewness = 8 * cube / pow(2 * square, 1.5);

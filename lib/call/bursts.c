@@ -1,6 +1,7 @@
 /* Bursts of tone, and chips that hop; see bursts.h. */
 #include "call/bursts.h"
 #include "base/units.h"
+#include "dsp/lanes.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -285,11 +286,20 @@ static double level_beside(const float *power, uint32_t bin)
     return sum / (2 * (BESIDE_FAR - BESIDE_NEAR + 1));
 }
 
+static bool any_stands_out(const struct bursts *bursts, const float *power, uint32_t bin)
+{
+    return lanes_any(lanes_load(power + bin) > lanes_all(STAND_OUT) * lanes_load(bursts->background + bin));
+}
+
 /* The strongest local maxima that stand out. */
 static uint32_t find_peaks(const struct bursts *bursts, const float *power, struct peak out[MAX_PEAKS])
 {
     uint32_t n = 0;
     for (uint32_t i = bursts->low_bin; i < bursts->high_bin; i++) {
+        if (i + LANES <= bursts->high_bin && !any_stands_out(bursts, power, i)) {
+            i += LANES - 1; /* most bins hold nothing */
+            continue;
+        }
         if (!(power[i] > STAND_OUT * bursts->background[i]) || power[i] < power[i - 1] ||
             power[i] <= power[i + 1] || !(power[i] > STAND_OUT * level_beside(power, i)))
             continue;

@@ -10,6 +10,7 @@
 
 #define CALL_CLASS_SIZE 32
 #define CALL_MAX_AGAINST 8
+#define CALL_MEASURES 7
 
 /* What a call can tell about who made it; a permit's own groups are predicates over these. */
 enum group {
@@ -46,9 +47,10 @@ struct call {
     double bearing_deg; /* NAN where none */
     double mirror_deg;  /* NAN where none */
     enum bearing_from bearing_from;
-    double certainty;   /* 0..1: how often a call like this is right */
-    double evidence;    /* log-odds it adds to a contact of its group; of what is no animal's 0 or less: the
-                           log-odds that it takes from each call that it covers, at most what that call has */
+    double certainty; /* 0..1: how often a call like this is right */
+    double evidence;  /* log-odds it adds to a contact of its group; of what is no animal's 0 or less: the
+                         log-odds that it takes from each call that it covers, at most what that call has */
+    double measures[CALL_MEASURES]; /* what its certainty rests on (call/certainty.h); not recorded */
     uint32_t n_sounds;  /* 0: an animal's call; else how many sounds of a class that is no animal's */
     uint32_t n_against; /* earlier calls of the same run and stream that it covers and speaks against ... */
     uint64_t against[CALL_MAX_AGAINST]; /* ... by their counters */

@@ -98,8 +98,9 @@ struct call_class {
     double low_hz, high_hz; /* band of the fundamental (tone) or of the pulse (train) */
     double natural_delay_s; /* from the end of the call to what the class needs to be sure */
     double false_per_hour;  /* the rate in Gaussian noise that the thresholds are set for */
-    double certainty;       /* 0..1 */
-    double evidence;        /* log-odds that one call adds to a contact of the group */
+    double certainty;       /* 0..1: how often a usual call of the class is right */
+    double evidence;        /* log-odds that one call adds to a contact of the group at most; of what is no
+                               animal's 0 or less: what it takes from each call that it covers */
     char source[CATALOGUE_TEXT_SIZE]; /* where the figures come from, with their marks */
     struct song_shape song;           /* of a tone that is a unit of song */
     struct tone_shape tone;           /* of a tone */
@@ -107,7 +108,22 @@ struct call_class {
     struct other_shape sound;         /* of what is no animal's: instead of both */
 };
 
+/* What the measures of a call say about it (call/certainty.h); all 0: nothing. */
+struct certainty_form {
+    double weight[CALL_MEASURES]; /* log-odds, per unit of the measure */
+    double usual[CALL_MEASURES];
+};
+
+/* From calls to grades of contacts. */
+struct certainty_table {
+    struct certainty_form tone, train;
+    double look_evidence, act_evidence;            /* log-odds from which a contact has the grade ... */
+    double look_false_per_hour, act_false_per_day; /* ... and the false contacts they were set for */
+    double evidence_decay_s;                       /* time constant with which log-odds fade */
+};
+
 struct catalogue {
+    struct certainty_table certainty;
     uint32_t n_classes;
     struct call_class classes[CATALOGUE_MAX_CLASSES];
 };

@@ -119,7 +119,7 @@ static double chance_rate(const struct codas *codas, const struct pulse *pulse, 
 }
 
 /* members[0..n) of one group, in order of arrival. */
-static bool is_certain(const struct codas *codas, uint32_t n)
+static bool is_certain(const struct codas *codas, uint32_t n, double *out_excess, double *out_rate)
 {
     const struct train_shape *shape = &codas->call_class.train;
     double ln_range = log(log(shape->max_interval_s / shape->min_interval_s)), ratio = 0, first = 0;
@@ -134,7 +134,9 @@ static bool is_certain(const struct codas *codas, uint32_t n)
         double interval_s = (pulse->frame - codas->pulses[codas->members[i - 1]].frame) / codas->rate_hz;
         ratio -= log(interval_s) + ln_range + log(rate);
     }
-    return n >= shape->min_pulses && ratio > log(3600 * first / codas->call_class.false_per_hour);
+    *out_rate = first;
+    *out_excess = ratio - log(3600 * first / codas->call_class.false_per_hour);
+    return n >= shape->min_pulses && *out_excess > 0;
 }
 
 /* Root mean square of how far, as a share, the n intervals in sorted[] are from whole multiples of their
@@ -155,9 +157,10 @@ static const struct pulse *member_of(const void *context, uint32_t i)
     return &codas->pulses[codas->members[i]];
 }
 
-static void give(struct codas *codas, uint32_t n, const struct train_sink *sink, uint64_t *rejections)
+static void give(struct codas *codas, uint32_t n, double excess, double rate, const struct train_sink *sink,
+                 uint64_t *rejections)
 {
-    struct train train = {.number = ++codas->n_trains, .members = codas->members};
+    struct train train = {.number = ++codas->n_trains, .members = codas->members, .excess = excess};
     for (uint32_t i = 0; i + 1 < n; i++)
         codas->sorted[i] =
             codas->pulses[codas->members[i + 1]].frame - codas->pulses[codas->members[i]].frame;
@@ -167,6 +170,11 @@ static void give(struct codas *codas, uint32_t n, const struct train_sink *sink,
         rejections[REJECT_MACHINE_RHYTHM]++;
         return;
     }
+    train.strays = rate * train.interval_frames / codas->rate_hz;
+    for (uint32_t i = 0; i + 1 < n; i++)
+        train.likeness += fmax(0, pulse_shape_likeness(&codas->pulses[codas->members[i]].shape,
+                                                       &codas->pulses[codas->members[i + 1]].shape)) /
+                          (n - 1);
     struct train_pulses pulses = {member_of, codas, n};
     train_describe(&pulses, codas->sorted, codas->arrivals, &train);
     for (uint32_t i = 0; i < n; i++)
@@ -201,7 +209,8 @@ static void judge(struct codas *codas, double ended, double kept, const struct t
                 codas->members[n++] = i;
         if (n == 0 || codas->pulses[codas->members[n - 1]].frame > ended)
             continue;
-        bool certain = is_certain(codas, n);
+        double excess, rate;
+        bool certain = is_certain(codas, n, &excess, &rate);
         for (uint32_t i = g; i < codas->n; i++) {
             if (codas->group[i] != g)
                 continue;
@@ -212,7 +221,7 @@ static void judge(struct codas *codas, double ended, double kept, const struct t
             count_stray(codas, &codas->pulses[i]);
         }
         if (certain)
-            give(codas, n, sink, rejections);
+            give(codas, n, excess, rate, sink, rejections);
     }
     forget_before(codas, kept);
 }
@@ -221,6 +230,10 @@ void codas_push(struct codas *codas, const struct pulse *pulse, const struct tra
                 uint64_t *rejections)
 {
     codas_advance(codas, pulse->frame, sink, rejections);
+    if (pulse->foreign) {
+        rejections[REJECT_SHAPE]++;
+        return;
+    }
     codas->pulses[codas->n] = *pulse;
     codas->numbers[codas->n] = codas->n_pulses++;
     codas->hidden[codas->n++] = false;

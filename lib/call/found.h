@@ -3,6 +3,7 @@
 #ifndef CALL_FOUND_H
 #define CALL_FOUND_H
 
+#include "call/call.h"
 #include <stdint.h>
 
 struct found_call {
@@ -13,8 +14,9 @@ struct found_call {
     uint32_t n_pulses;      /* 0 for a tone */
     double interval_frames; /* 0 for a tone */
     double snr_db;
-    double mean_square_pa2; /* in the call's band, over its time */
-    double harmonics_to_hz; /* of a burst: its highest harmonic that stands out; 0: none */
+    double mean_square_pa2;         /* in the call's band, over its time */
+    double harmonics_to_hz;         /* of a burst: its highest harmonic that stands out; 0: none */
+    double measures[CALL_MEASURES]; /* of an animal's call: call/certainty.h */
 };
 
 struct found_sink {

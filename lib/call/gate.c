@@ -202,7 +202,13 @@ void gate_get_tail(const struct gate *gate, struct gate_tail *out)
     for (uint32_t b = 0; b < gate->n_bands; b++) {
         const struct band *band = &gate->bands[b];
         double ratio = gate_floor_ratio(&band->floor, (double)since * STEP_S);
-        out->bands[b] = (struct gate_tail_band){band->low_hz, band->high_hz, (float)ratio, band->open};
+        const struct stretch *last = newest(band);
+        out->bands[b] = (struct gate_tail_band){.low_hz = band->low_hz,
+                                                .high_hz = band->high_hz,
+                                                .ratio = (float)ratio,
+                                                .masked = band->open,
+                                                .masked_from = last ? frame_of(gate, last->start) : 0,
+                                                .masked_to = last ? frame_of(gate, last->end) : 0};
     }
 }
 

@@ -46,6 +46,8 @@ struct gate_tail_band {
     double low_hz, high_hz;
     float ratio; /* what impulses before left at this time, over the band's quietest time; 1: nothing */
     bool masked; /* the impulse itself covers the band */
+    double masked_from, masked_to; /* frames: the newest stretch that it covers, as far as it is known; equal
+                                      where there is none */
 };
 
 struct gate_tail {

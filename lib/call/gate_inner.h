@@ -65,9 +65,9 @@ static inline float power_at(const struct gate *gate, uint32_t b, int64_t step)
     return gate->power[(size_t)b * gate->n_memory + (size_t)(step % gate->n_memory)];
 }
 
-static inline struct stretch *newest(struct band *band)
+static inline struct stretch *newest(const struct band *band)
 {
-    return band->n_stretches ? &band->stretches[(band->n_stretches - 1) % STRETCHES] : NULL;
+    return band->n_stretches ? (struct stretch *)&band->stretches[(band->n_stretches - 1) % STRETCHES] : NULL;
 }
 
 /* gate_mask.c: masks what an impulse with its onset and T90 in these steps covers of the band, as far as it

@@ -375,3 +375,8 @@ double pulse_shape_likeness(const struct pulse_shape *a, const struct pulse_shap
 {
     return (double)likeness_of_parts(a, b) + likeness_of_echoes(a, b);
 }
+
+double pulse_shape_alike_spectra(const struct pulse_shape *a, const struct pulse_shape *b)
+{
+    return (double)likeness_of_parts(a, b);
+}

@@ -62,5 +62,7 @@ void pulse_shape_centre(struct pulse_shape *shape);
  * unlike. At most PULSE_SHAPE_MOST; without a lower limit. */
 #define PULSE_SHAPE_MOST 8.0
 double pulse_shape_likeness(const struct pulse_shape *a, const struct pulse_shape *b);
+/* The same of their spectra alone: of what follows a pulse its echoes are part. */
+double pulse_shape_alike_spectra(const struct pulse_shape *a, const struct pulse_shape *b);
 
 #endif

@@ -21,7 +21,7 @@ static double noise_rate_of(const void *context, double snr)
 /* The search that serves the ear: that of an earlier one or a new one. */
 static enum status find_search(struct pulses *pulses, struct ear *ear)
 {
-    const struct stage *stage = &pulses->stages[ear->stage];
+    struct stage *stage = &pulses->stages[ear->stage];
     struct search_setup setup = {
         .call_class = ear->call_class,
         .bands = stage->bands,
@@ -40,8 +40,10 @@ static enum status find_search(struct pulses *pulses, struct ear *ear)
             return STATUS_OK;
         }
     enum status status = pulse_search_create(&setup, &ear->search);
-    if (status == STATUS_OK)
+    if (status == STATUS_OK) {
         pulses->searches[pulses->n_searches++] = ear->search;
+        stage->searches[stage->n_searches++] = ear->search;
+    }
     return status;
 }
 
@@ -52,6 +54,8 @@ static enum status create_ear(struct pulses *pulses, struct ear *ear)
         status = trigger_create(ear->call_class, ear->search, &ear->trigger);
     if (status != STATUS_OK)
         return status;
+    struct stage *stage = &pulses->stages[ear->stage];
+    stage->ears[stage->n_ears++] = (uint32_t)(ear - pulses->ears);
     struct noise_rate noise = {noise_rate_of, ear->search};
     return tied_create(ear->call_class, pulses->rate_hz, noise, &ear->tied);
 }
@@ -93,6 +97,7 @@ void pulses_reset(struct pulses *pulses, uint64_t next_frame)
         trigger_reset(pulses->ears[e].trigger);
         tied_reset(&pulses->ears[e].tied);
         pulses->ears[e].hidden = (struct hidden){0};
+        pulses->ears[e].behind = false;
     }
 }
 
@@ -141,6 +146,7 @@ static void take_train(void *context, const struct train *train)
         .mean_square_pa2 =
             (train->end_energy - train->start_energy) / fmax(1, train->end_frame - train->start_frame),
     };
+    train_measure(train, ear->call_class, found.measures);
     hearing->pulses->given = train;
     hearing->pulses->sink->take(hearing->pulses->sink->context, &found);
     hearing->pulses->given = NULL;
@@ -156,6 +162,27 @@ static void take_pulse(void *context, const struct pulse *pulse)
         tied_push(&hearing->ear->tied, pulse, &sink, hearing->ear->rejections);
 }
 
+/* What an ear makes of a block. Where nothing was found and nothing waits for its echoes, only time has gone
+ * on: that is told to the trains now and then, and before the next pulse. */
+static void hear(struct pulses *pulses, struct ear *ear, const struct stage *stage)
+{
+    struct hearing hearing = {pulses, ear};
+    struct pulse_sink pulse_sink = {take_pulse, &hearing};
+    struct train_sink train_sink = {take_train, &hearing};
+    const bool idle = trigger_is_idle(ear->trigger);
+    if (idle && stage->n_blocks % stage->tell_blocks != 0) {
+        ear->behind = true;
+        return;
+    }
+    if (!idle && ear->behind)
+        tied_advance(&ear->tied,
+                     pulse_search_get_known(ear->search) - (double)stage->block_frames * stage->factor,
+                     &train_sink, ear->rejections);
+    ear->behind = false;
+    trigger_push(ear->trigger, &pulse_sink, ear->rejections);
+    tied_advance(&ear->tied, trigger_get_known(ear->trigger), &train_sink, ear->rejections);
+}
+
 void pulses_search(struct pulses *pulses, uint32_t index)
 {
     struct stage *stage = &pulses->stages[index];
@@ -163,19 +190,10 @@ void pulses_search(struct pulses *pulses, uint32_t index)
     stage->n_blocks++;
     pulses->known_frame =
         pulses->first_frame + stage->n_blocks * stage->block_frames * stage->factor - (stage->factor == 1);
-    for (uint32_t s = 0; s < pulses->n_searches; s++)
-        if (pulse_search_get_setup(pulses->searches[s])->bands == stage->bands)
-            pulse_search_push(pulses->searches[s]);
-    for (uint32_t e = 0; e < pulses->n_ears; e++) {
-        struct ear *ear = &pulses->ears[e];
-        if (ear->stage != index)
-            continue;
-        struct hearing hearing = {pulses, ear};
-        struct pulse_sink pulse_sink = {take_pulse, &hearing};
-        struct train_sink train_sink = {take_train, &hearing};
-        trigger_push(ear->trigger, &pulse_sink, ear->rejections);
-        tied_advance(&ear->tied, trigger_get_known(ear->trigger), &train_sink, ear->rejections);
-    }
+    for (uint32_t s = 0; s < stage->n_searches; s++)
+        pulse_search_push(stage->searches[s]);
+    for (uint32_t e = 0; e < stage->n_ears; e++)
+        hear(pulses, &pulses->ears[stage->ears[e]], stage);
 }
 
 void pulses_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct found_sink *sink)

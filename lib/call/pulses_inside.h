@@ -28,6 +28,11 @@ struct stage {
     uint32_t n_edges;
     uint32_t filled;
     uint64_t n_blocks; /* since the last reset */
+    uint32_t
+        tell_blocks; /* trains are told how far the sound has come once in so many, where nothing is found */
+    uint32_t n_searches, n_ears;
+    struct pulse_search *searches[CATALOGUE_MAX_CLASSES];
+    uint32_t ears[CATALOGUE_MAX_CLASSES];
 };
 
 /* One hearable class. */
@@ -39,6 +44,7 @@ struct ear {
     struct trigger *trigger;
     struct tied tied;
     struct hidden hidden;
+    bool behind; /* its trains were not told of the last block */
     uint64_t rejections[REJECT_COUNT];
 };
 

@@ -8,6 +8,7 @@
 #define BLOCK_SLOTS 64       /* looked at together, where they last no longer ... */
 #define LONGEST_BLOCK_S 0.01 /* ... than this; else: */
 #define SLOW_BLOCK_SLOTS 8
+#define TELL_S 0.005
 /* A class with a highest edge of at most rate / 16 runs decimated, at 4.8 times that edge or more. */
 #define DECIMATE_BELOW 16
 #define DECIMATED_RATE 4.8
@@ -161,6 +162,7 @@ static enum status create_stage(struct pulses *pulses, uint32_t index)
     const double block_s = BLOCK_SLOTS * stage->slot_frames / stage->rate_hz;
     stage->block_slots = block_s <= LONGEST_BLOCK_S ? BLOCK_SLOTS : SLOW_BLOCK_SLOTS;
     stage->block_frames = stage->block_slots * stage->slot_frames;
+    stage->tell_blocks = (uint32_t)fmax(1, floor(TELL_S * stage->rate_hz / stage->block_frames));
     for (uint32_t e = 0; e < pulses->n_ears; e++) {
         if (pulses->ears[e].stage != index)
             continue;

@@ -50,8 +50,7 @@ LANES_WIDE float sliding_means(const float *power, uint32_t n, uint32_t window, 
         wide_load(&here, out + i);
         here *= scale;
         wide_store(out + i, &here);
-        const wide_mask more = here > greatest;
-        greatest = (wide_lanes)((more & (wide_mask)here) | (~more & (wide_mask)greatest));
+        greatest = WIDE_CHOOSE(here > greatest, here, greatest);
     }
     float most = 0;
     for (uint32_t lane = 0; lane < WIDE_LANES; lane++)

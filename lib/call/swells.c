@@ -213,6 +213,20 @@ static float sum_of(const float *power, uint32_t first, uint32_t end)
     return (float)sum;
 }
 
+/* A hump is broad, a line stands in one part of it: the loudest quarter counts at most half as much again as
+ * the others do. */
+static float sum_of_hump(const float *power, uint32_t first, uint32_t end)
+{
+    float all = 0, loudest = 0;
+    for (uint32_t k = 0; k < 4; k++) {
+        float part = sum_of(power, first + (end - first) * k / 4, first + (end - first) * (k + 1) / 4);
+        all += part;
+        loudest = part > loudest ? part : loudest;
+    }
+    float others = all - loudest;
+    return others + fminf(loudest, others / 2);
+}
+
 static bool is_snap(const struct other_frame *frame)
 {
     float most = 0, sum = 0;
@@ -235,7 +249,9 @@ void swells_push(struct swells *swells, const struct other_frame *frame, const s
     }
     for (uint32_t i = 0; i < swells->n_watched; i++) {
         struct watched *watched = &swells->watched[i];
-        watched->power[swells->n] = sum_of(frame->power, watched->first, watched->end);
+        bool hump = swells->setup.classes[watched->class_index].sound.manner == MANNER_HUMP;
+        watched->power[swells->n] = hump ? sum_of_hump(frame->power, watched->first, watched->end)
+                                         : sum_of(frame->power, watched->first, watched->end);
         watched->power_below[swells->n] = sum_of(frame->power, watched->first_below, watched->end_below);
     }
     if (is_snap(frame))

@@ -292,14 +292,18 @@ static float limit(float pascals)
     return isfinite(pascals) ? copysignf(MOST_PA, pascals) : 0;
 }
 
-static bool is_in_range(const float *pascals, uint32_t n)
+LANES_WIDE static bool is_in_range(const float *pascals, uint32_t n)
 {
-    const lanes most = lanes_all(MOST_PA);
-    lane_mask beyond = {0};
+    wide_mask beyond = {0};
+    wide_lanes x;
     uint32_t i = 0;
-    for (; i + LANES <= n; i += LANES)
-        beyond |= ~(lanes_size(lanes_load(pascals + i)) <= most);
-    bool good = !lanes_any(beyond);
+    for (; i + WIDE_LANES <= n; i += WIDE_LANES) {
+        wide_load(&x, pascals + i);
+        beyond |= ~(WIDE_SIZE(x) <= MOST_PA);
+    }
+    bool good = true;
+    for (uint32_t lane = 0; lane < WIDE_LANES; lane++)
+        good = good && !beyond[lane];
     for (; i < n; i++)
         good = good && fabsf(pascals[i]) <= MOST_PA;
     return good;
@@ -345,6 +349,7 @@ void tones_hear_tail(struct tones *tones, const struct gate_tail *tail)
             const struct gate_tail_band *band = &tail->bands[b];
             tracer_set_tail(tones->tracers[i], band->low_hz, band->high_hz,
                             band->masked || band->ratio > TAIL_HEARD);
+            tracer_set_masked(tones->tracers[i], b, band);
         }
 }
 

@@ -3,6 +3,7 @@
 #ifndef CALL_TONES_FIELD_H
 #define CALL_TONES_FIELD_H
 
+#include "call/hidden.h"
 #include "call/tones_trace.h"
 #include "dsp/background.h"
 #include "dsp/lanes.h"
@@ -30,9 +31,19 @@ struct path {
     float best;         /* highest score, no more than the ceiling */
     uint64_t first;     /* frame of its start */
     uint64_t last_rise; /* last frame at which the score reached its highest */
+    uint32_t n_unheard; /* frames since then in which the own source covered it */
     uint32_t best_bin;  /* there */
     float tip;          /* highest score in the newest frame, and its bin */
     uint32_t tip_bin;
+};
+
+#define NOT_HEARD (-1.0F) /* instead of power over background: the own source covers the cell */
+
+/* Stretches of input frames that the own source covers, in the bins [low, high). */
+struct unheard {
+    uint32_t low, high;
+    bool is_now; /* in the frame at hand */
+    struct hidden hidden;
 };
 
 /* One frame's cells of the recursion; [stride + 2 * MAX_STEP] with an empty margin of MAX_STEP in
@@ -52,7 +63,8 @@ struct tracer {
     double bin_hz, hop; /* of the spectrum; hop in input frames */
     uint32_t n, n_bins, first_bin;
     uint32_t stride;        /* n_bins, rounded up to a multiple of TILE */
-    uint32_t max_step, gap; /* bins a frame; frames that are bridged */
+    uint32_t max_step, gap; /* bins a frame; frames that are bridged ... */
+    uint32_t max_unheard;   /* ... besides those that the own source covers, at most so many */
     uint32_t n_history;
 
     struct spectrum *spectrum;
@@ -63,6 +75,7 @@ struct tracer {
     float *held, *limited;
     float *power_store,
         *power; /* power[n / 2 + 1] in the middle of a store with margins of TILE and 2 * TILE */
+    float *excess_store, *excess; /* [stride], over the background, with margins of TILE */
 
     uint64_t frame;                           /* that is being worked on, or the next */
     uint64_t newest;                          /* whose power is in the history */
@@ -72,6 +85,8 @@ struct tracer {
     float *best;               /* [stride] of the recursion: the best score that leads to each cell ... */
     int32_t *step;             /* ... and how far it comes, or STEP_START */
     struct cells now, before;
+    struct unheard unheard[GATE_BANDS];
+    bool is_slow; /* its window outlasts a blow */
     struct path paths[MAX_PATHS];
     uint32_t n_paths; /* all that are open are among the first so many */
 
@@ -87,6 +102,15 @@ static inline uint32_t tracer_row(const struct tracer *tracer, uint64_t frame)
     return (uint32_t)(frame % tracer->n_history);
 }
 
+/* tones_unheard.c: of the frame that is held. Silences the samples that the own source covers, where the
+ * window outlasts it, and returns how many are left. */
+uint32_t unheard_silence(struct tracer *tracer);
+/* What the power of such a frame lacks, 1 or more; 0 where it is too little to be heard. */
+double unheard_make_good(const struct tracer *tracer);
+/* Puts in the place of what the own source covers in this frame what the bins held before ... */
+void unheard_replace(struct tracer *tracer);
+/* ... and takes what these cells say of a tone out of gain and history. */
+void unheard_clear(struct tracer *tracer);
 /* tones_paths.c: one frame of the recursion over tracer->gain, then paths that begin and end. */
 void paths_advance(struct tracer *tracer, const struct trace_sink *sink);
 /* Ends all open paths. */

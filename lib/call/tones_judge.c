@@ -1,5 +1,7 @@
 /* From contours to calls; see tones_judge.h. */
 #include "call/tones_judge.h"
+#include "base/units.h"
+#include "call/certainty.h"
 #include "call/tones_related.h"
 #include <math.h>
 #include <string.h>
@@ -21,11 +23,15 @@ bool judge_is_same_sound(const struct judge *judge, const struct contour *a, con
         return true;
     if (common <= 0)
         return false;
-    if (related_is_same_line(a, b) || related_is_harmonic(a, b))
+    if (related_is_same_line(a, b) || related_is_harmonic(a, b) || related_is_blurred(a, b) ||
+        related_is_blurred(b, a))
         return true;
     bool same_group = (judge->groups[a->tracer] & judge->groups[b->tracer]) != 0;
+    /* Another window of the group may see the same sound otherwise, but not elsewhere. */
     if ((a->tracer == b->tracer || !same_group) && related_is_apart(a, b))
-        return false; /* another window of the group sees the same sound otherwise */
+        return false;
+    if (same_group && related_is_across(a, b))
+        return false;
     return common >= CONTAINED * (same_group ? fmin(length[0], length[1]) : fmax(length[0], length[1]));
 }
 
@@ -185,10 +191,43 @@ static struct sound *find_sound(struct judge *judge, const struct contour *c, en
     return found ? found : unused;
 }
 
+/* Of the classes with nearly the most points the one that lets least through. */
+static uint32_t best_class(const struct judge *judge, const struct sound *sound)
+{
+    double most = 0;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        most = fmax(most, sound->points[i]);
+    uint32_t best = 0;
+    double least = INFINITY;
+    for (uint32_t i = 0; i < judge->n_classes; i++)
+        if (sound->points[i] > 0 && sound->points[i] >= NEARLY_BEST * most &&
+            judge->classes[i].allowance < least) {
+            least = judge->classes[i].allowance;
+            best = i;
+        }
+    return best;
+}
+
+/* Sounds that waited for a contour which proves a steady line are pieces of it: where their paths left it is
+ * noise. */
+static void drop_pieces_of_line(struct judge *judge, const struct contour *line)
+{
+    for (uint32_t i = 0; i < JUDGE_MAX_SOUNDS; i++) {
+        struct sound *sound = &judge->sounds[i];
+        if (!sound->used || sound->given || sound->start_frame < line->start_frame ||
+            !belongs(judge, sound, line))
+            continue;
+        judge->rejections[best_class(judge, sound)][REJECT_STEADY_LINE]++;
+        sound->used = false;
+    }
+}
+
 void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const struct contour *contour)
 {
     struct contour c = contour ? *contour : (struct contour){0};
     c.tracer = tracer;
+    if (contour && end == TRACE_STEADY_LINE)
+        drop_pieces_of_line(judge, &c);
     enum rejection all = reject_contour(judge, end, &c), each[CATALOGUE_MAX_CLASSES];
     bool fits = false;
     for (uint32_t i = 0; i < judge->n_classes; i++) {
@@ -213,23 +252,6 @@ void judge_take(struct judge *judge, uint32_t tracer, enum trace_end end, const 
     }
 }
 
-/* Of the classes with nearly the most points the one that lets least through. */
-static uint32_t best_class(const struct judge *judge, const struct sound *sound)
-{
-    double most = 0;
-    for (uint32_t i = 0; i < judge->n_classes; i++)
-        most = fmax(most, sound->points[i]);
-    uint32_t best = 0;
-    double least = INFINITY;
-    for (uint32_t i = 0; i < judge->n_classes; i++)
-        if (sound->points[i] > 0 && sound->points[i] >= NEARLY_BEST * most &&
-            judge->classes[i].allowance < least) {
-            least = judge->classes[i].allowance;
-            best = i;
-        }
-    return best;
-}
-
 static bool is_due(const struct judge *judge, const struct sound *sound, double frame)
 {
     return sound->used && !sound->given &&
@@ -247,6 +269,27 @@ bool judge_is_due(const struct judge *judge, double frame)
     return false;
 }
 
+/* What its certainty rests on: its strongest contour in the class's window. */
+static void measure(const struct judge *judge, const struct sound *sound, struct found_call *out)
+{
+    const struct judged_class *best = &judge->classes[out->class_index];
+    const struct tone_shape *shape = &best->class->tone;
+    const struct contour *c = NULL;
+    for (uint32_t i = 0; i < sound->n_members; i++) {
+        const struct contour *member = &sound->members[i];
+        if (member->tracer == best->tracer && (!c || weight_of(member) > weight_of(c)))
+            c = member;
+    }
+    if (!c)
+        return;
+    out->measures[TONE_LENGTH] = log(fmax(0.1, c->seconds / shape->min_s));
+    out->measures[TONE_BEND] = log(0.1 + c->bend_hz / c->bin_hz);
+    out->measures[TONE_JUMP] = log(0.1 + c->jump_hz / c->bin_hz);
+    out->measures[TONE_OCCUPANCY] = log(0.01 + c->occupancy);
+    out->measures[TONE_CONTRAST] = units_power_db(c->contrast);
+    out->measures[TONE_STRENGTH] = fmin(15, out->snr_db - shape->min_snr_db);
+}
+
 static void give(const struct judge *judge, struct sound *sound, uint64_t known_frame,
                  const struct found_sink *sink)
 {
@@ -262,6 +305,7 @@ static void give(const struct judge *judge, struct sound *sound, uint64_t known_
                                .high_hz = sound->high_hz,
                                .snr_db = 10 * log10(sound->snr_weight / sound->weight),
                                .mean_square_pa2 = energy / (sound->end_frame - sound->start_frame)};
+    measure(judge, sound, &found);
     sound->given = true;
     sink->take(sink->context, &found);
 }

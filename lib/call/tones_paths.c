@@ -12,42 +12,49 @@
 #define GAP_COST 12.0F    /* fall of the score that ends a path: a gap of about 8 frames */
 #define PIECE_SWEEPS 0.03 /* of its frequency: what is too long for a call, and yet no line */
 #define REMAINS 0.5       /* of its power after its end: it has not ended */
+#define REFUTED 6.0F      /* 1 in 400 */
 #define SLOPE_GAIN 0.35F  /* how fast the slope follows */
 
-typedef int8_t tile_bytes __attribute__((vector_size(TILE)));
+typedef int8_t wide_bytes __attribute__((vector_size(WIDE_LANES)));
 
-/* For four cells from k on the best path that leads to each; 0 where it is better to begin there. */
-static inline void find_best(struct tracer *tracer, uint32_t k, int8_t *out_steps)
+/* The best path that leads to each cell, 0 where it is better to begin there, and the score with the cell's
+ * own gain. Cells begin paths, but for those that go on from another. */
+LANES_WIDE static void find_best(struct tracer *tracer, const float *snrs, int8_t *out_steps,
+                                 float *out_scores)
 {
-    const lanes most = lanes_all(STEP_COST_MOST), least = lanes_all(STEP_COST),
-                per_bin = lanes_all(STEP_COST_BIN);
-    lanes best = lanes_all(0), chosen = lanes_all(STEP_START);
-    for (int d = -(int)tracer->max_step; d <= (int)tracer->max_step; d++) {
-        const lanes score = lanes_load(tracer->before.score + (int)(MAX_STEP + k) - d);
-        const lanes slope = lanes_load(tracer->before.slope + (int)(MAX_STEP + k) - d);
-        const lanes step = lanes_all((float)d);
-        const lanes cost = lanes_least(least + per_bin * lanes_size(step - slope), most);
-        const lanes candidate = score - cost;
-        chosen = lanes_choose(candidate > best, step, chosen);
-        best = lanes_greatest(candidate, best);
-    }
-    const lane_mask steps = __builtin_convertvector(chosen, lane_mask);
-    const tile_bytes history = __builtin_convertvector(steps, tile_bytes);
-    lanes_store(tracer->best + k, best);
-    memcpy(tracer->step + k, &steps, sizeof steps);
-    memcpy(out_steps + k, &history, sizeof history);
-}
-
-/* Four cells begin paths, but for those that go on from another. */
-static inline void begin_cells(struct tracer *tracer, uint32_t at, const float *snrs)
-{
+    const wide_lanes most = WIDE_ALL(STEP_COST_MOST), none = {0};
+    const float ceiling = (float)tracer->setup.ceiling;
+    const int max_step = (int)tracer->max_step;
     struct cells *now = &tracer->now;
-    const lanes snr = lanes_load(snrs);
-    lanes_store(now->slope + at, lanes_all(0));
-    lanes_store(now->level + at, snr);
-    lanes_store(now->peak + at, snr);
-    for (uint32_t lane = 0; lane < TILE; lane++)
-        now->first[at + lane] = tracer->frame;
+    for (uint32_t k = 0; k < tracer->n_bins; k += WIDE_LANES) {
+        wide_lanes best = none, chosen = WIDE_ALL(STEP_START), score, slope, gain, snr;
+        for (int d = -max_step; d <= max_step; d++) {
+            wide_load(&score, tracer->before.score + (int)(MAX_STEP + k) - d);
+            wide_load(&slope, tracer->before.slope + (int)(MAX_STEP + k) - d);
+            const wide_lanes turn = (float)d - slope;
+            wide_lanes cost = STEP_COST + STEP_COST_BIN * WIDE_SIZE(turn);
+            cost = WIDE_CHOOSE(cost < most, cost, most);
+            const wide_lanes candidate = score - cost;
+            const wide_mask better = candidate > best;
+            chosen = WIDE_CHOOSE(better, WIDE_ALL((float)d), chosen);
+            best = WIDE_CHOOSE(better, candidate, best);
+        }
+        const wide_mask steps = __builtin_convertvector(chosen, wide_mask);
+        const wide_bytes history = __builtin_convertvector(steps, wide_bytes);
+        wide_store(tracer->best + k, &best);
+        memcpy(tracer->step + k, &steps, sizeof steps);
+        memcpy(out_steps + k, &history, sizeof history);
+        wide_load(&gain, tracer->gain + k);
+        best = WIDE_CHOOSE(best < ceiling, best, WIDE_ALL(ceiling)) + gain;
+        best = WIDE_CHOOSE(best > none, best, none);
+        wide_store(out_scores + k, &best);
+        wide_load(&snr, snrs + k);
+        wide_store(now->slope + k + MAX_STEP, &none);
+        wide_store(now->level + k + MAX_STEP, &snr);
+        wide_store(now->peak + k + MAX_STEP, &snr);
+    }
+    for (uint32_t at = MAX_STEP; at < tracer->stride + MAX_STEP; at++)
+        now->first[at] = tracer->frame;
 }
 
 static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr)
@@ -58,7 +65,8 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr
     const float peak = before->peak[from] * tracer->tail_fall;
     now->slope[at] = before->slope[from] + SLOPE_GAIN * ((float)step - before->slope[from]);
     const float most = GROWTH * before->level[from];
-    now->level[at] = before->level[from] + SMOOTHING * ((snr < most ? snr : most) - before->level[from]);
+    const float heard = snr > NOT_HEARD ? snr : before->level[from];
+    now->level[at] = before->level[from] + SMOOTHING * ((heard < most ? heard : most) - before->level[from]);
     now->peak[at] = now->level[at] > peak ? now->level[at] : peak;
     now->path[at] = before->path[from];
     now->first[at] = before->first[from];
@@ -69,7 +77,8 @@ static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceilin
 {
     const uint32_t at = k + MAX_STEP;
     const int step = tracer->step[k];
-    if (tracer->gain[k] > FLANK_GAIN && snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
+    if (snr > NOT_HEARD && tracer->gain[k] > FLANK_GAIN &&
+        snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
         const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
         tracer->now.score[at] = score > 0 ? score : 0;
         if (score <= 0)
@@ -84,6 +93,23 @@ static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceilin
         path->tip = tracer->now.score[at];
         path->tip_bin = k;
     }
+}
+
+/* A path has one course: what leads elsewhere and is so much less likely than where the path stands is no
+ * part of it. There another may begin, which would else be taken for the rest of this one. */
+static void refute_cell(struct tracer *tracer, uint32_t k, float snr)
+{
+    struct cells *now = &tracer->now;
+    const uint32_t at = k + MAX_STEP;
+    if (now->path[at] == NO_PATH || now->score[at] >= tracer->paths[now->path[at]].tip - REFUTED)
+        return;
+    now->path[at] = NO_PATH;
+    now->score[at] = tracer->gain[k] > 0 ? tracer->gain[k] : 0;
+    now->slope[at] = 0;
+    now->level[at] = now->peak[at] = snr > NOT_HEARD ? snr : 0;
+    now->first[at] = tracer->frame;
+    tracer->tail[k] = 0;
+    tracer->history_step[(size_t)tracer_row(tracer, tracer->frame) * tracer->stride + k] = STEP_START;
 }
 
 static void forget_tips(struct tracer *tracer)
@@ -101,13 +127,7 @@ static void step_cells(struct tracer *tracer)
     const size_t row = (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     const float *snrs = tracer->history_snr + row;
     int8_t *steps = tracer->history_step + row;
-    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
-        find_best(tracer, k, steps);
-        const lanes best = lanes_load(tracer->best + k);
-        const lanes score = lanes_least(best, lanes_all(ceiling)) + lanes_load(tracer->gain + k);
-        lanes_store(scores + k, lanes_greatest(score, lanes_all(0)));
-        begin_cells(tracer, k + MAX_STEP, snrs + k);
-    }
+    find_best(tracer, snrs, steps, scores);
     for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
         scores[k] = 0; /* beyond the band nothing runs */
     memset(tracer->now.path, 0xff, (tracer->stride + 2 * MAX_STEP) * sizeof *tracer->now.path); /* NO_PATH */
@@ -119,6 +139,14 @@ static void step_cells(struct tracer *tracer)
             const uint32_t at = k + (uint32_t)__builtin_ctz(bits);
             step_cell(tracer, at, snrs[at], ceiling);
         }
+    }
+    for (uint32_t k = 0; k < tracer->n_bins && tracer->n_paths > 0; k += TILE) {
+        uint64_t paths;
+        memcpy(&paths, tracer->now.path + MAX_STEP + k, sizeof paths);
+        if (paths == UINT64_MAX)
+            continue; /* all of them NO_PATH */
+        for (uint32_t j = k; j < k + TILE && j < tracer->n_bins; j++)
+            refute_cell(tracer, j, snrs[j]);
     }
 }
 
@@ -148,7 +176,7 @@ static void end_path(struct tracer *tracer, uint32_t i, enum trace_end end, cons
 {
     struct contour contour;
     contour_trace(tracer, &tracer->paths[i], true, &contour);
-    const bool flat = contour_is_flat(&contour);
+    const bool flat = contour_is_flat(&contour) || contour_settles(&contour);
     const bool sweeps = fabs(contour.sweep_hz) > PIECE_SWEEPS * contour.high_hz;
     if (end == TRACE_STEADY_LINE && sweeps && !flat)
         end = TRACE_CONTOUR; /* a piece of what is too long */
@@ -164,20 +192,44 @@ static void follow_paths(struct tracer *tracer, const struct trace_sink *sink)
 {
     const float ceiling = (float)tracer->setup.ceiling;
     const double max_frames = tracer->setup.max_s * tracer->frame_rate - 2;
+    const float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
     for (uint32_t i = 0; i < tracer->n_paths; i++) {
         struct path *path = &tracer->paths[i];
         if (!path->open)
             continue;
         float tip = path->tip < ceiling ? path->tip : ceiling;
+        path->n_unheard += snrs[path->tip_bin] <= NOT_HEARD && path->n_unheard < tracer->max_unheard;
         if (tip >= path->best) {
             path->best = tip;
             path->last_rise = tracer->frame;
+            path->n_unheard = 0;
             path->best_bin = path->tip_bin;
         }
         if ((double)(path->last_rise - path->first) > max_frames)
             end_path(tracer, i, TRACE_STEADY_LINE, sink);
-        else if (tip <= path->best - GAP_COST || tracer->frame - path->last_rise >= tracer->gap)
+        else if (tip <= path->best - GAP_COST ||
+                 tracer->frame - path->last_rise >= tracer->gap + path->n_unheard)
             end_path(tracer, i, TRACE_CONTOUR, sink);
+    }
+}
+
+static uint32_t bins_apart(uint32_t a, uint32_t b)
+{
+    return a > b ? a - b : b - a;
+}
+
+/* What began in the same frame, and is no further away than it could have come since, is a branch of the path
+ * in bin k. */
+static void claim_branches(struct tracer *tracer, uint32_t k, int16_t path)
+{
+    struct cells *now = &tracer->now;
+    const uint64_t first = now->first[k + MAX_STEP];
+    const uint64_t reach = (tracer->frame - first) * tracer->max_step;
+    for (uint32_t i = 0; i < tracer->n_bins; i++) {
+        const uint32_t at = i + MAX_STEP;
+        if (now->path[at] == NO_PATH && now->score[at] > 0 && now->first[at] == first &&
+            bins_apart(i, k) <= reach)
+            now->path[at] = path;
     }
 }
 
@@ -198,7 +250,14 @@ static void open_path(struct tracer *tracer, uint32_t k, const struct trace_sink
             continue;
         float ceiling = (float)tracer->setup.ceiling;
         float best = now->score[at] < ceiling ? now->score[at] : ceiling;
-        *path = (struct path){true, best, now->first[at], tracer->frame, k, now->score[at], k};
+        *path = (struct path){.open = true,
+                              .best = best,
+                              .first = now->first[at],
+                              .last_rise = tracer->frame,
+                              .best_bin = k,
+                              .tip = now->score[at],
+                              .tip_bin = k};
+        claim_branches(tracer, k, (int16_t)i);
         now->path[at] = (int16_t)i;
         tracer->n_paths = i < tracer->n_paths ? tracer->n_paths : i + 1;
         return;

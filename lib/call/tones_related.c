@@ -14,6 +14,8 @@
 #define APART_MOSTLY 0.5    /* ... for this share of the time */
 #define OVERTONE_WEAKER 0.1 /* share of the mean square of the sound in which it lies */
 #define FAR_WEAKER 0.01
+#define SMOOTH_BINS 5.0    /* mean jump of one line, times the square root of its SNR */
+#define BLURRED_WITHIN 0.8 /* of its time */
 #define ECHO_S 0.5
 #define LEAST_MULTIPLE 1.4 /* any ratio below it rounds to 1 */
 #define NEAR_HZ 0.01       /* more than what is lost where a frequency is kept as a float */
@@ -101,22 +103,27 @@ static double share_kept(const struct contour *a, const struct contour *b, const
     return share_in_ratio(common, ratio, error, fmax(a->bin_hz, ratio * b->bin_hz) / 2);
 }
 
-/* How far it goes in the common time, as a share of its frequency. */
-static double sweep_within(const struct contour *c, const double hz[TRACE_POINTS])
+/* How far it goes in the common time, as a share of its frequency; 0 where that is no more than least_hz. */
+static double sweep_beyond(const double hz[TRACE_POINTS], double least_hz)
 {
     double low = hz[0], high = hz[0];
     for (uint32_t i = 1; i < TRACE_POINTS; i++) {
         low = hz[i] < low ? hz[i] : low;
         high = hz[i] > high ? hz[i] : high;
     }
-    return high - low > 4 * c->bin_hz ? (high - low) / high : 0;
+    return high - low > least_hz ? (high - low) / high : 0;
+}
+
+static double sweep_within(const struct contour *c, const double hz[TRACE_POINTS])
+{
+    return sweep_beyond(hz, 4 * c->bin_hz);
 }
 
 /* Whether it could sweep enough in any part of it: cheap, before the course is looked at. */
 static bool may_sweep(const struct contour *c)
 {
     const double extent = c->high_hz - c->low_hz + NEAR_HZ;
-    return extent > 4 * c->bin_hz && extent >= SWEEPS * c->high_hz;
+    return extent > 2 * c->bin_hz && extent >= SWEEPS * c->high_hz;
 }
 
 bool related_is_same_line(const struct contour *a, const struct contour *b)
@@ -130,16 +137,48 @@ bool related_is_same_line(const struct contour *a, const struct contour *b)
     return share_in_ratio(&common, 1, 0, tolerance_hz) >= MOSTLY;
 }
 
-/* a is near a low multiple of b most of the time, though it may go from one to the next. */
-static bool keeps_to_multiples(const struct common *common)
+/* It keeps to one line: noise moves it the less, the stronger it is. What is open is taken to. */
+static bool is_smooth(const struct contour *c)
+{
+    return c->jump_hz * sqrt(c->snr) <= SMOOTH_BINS * c->bin_hz;
+}
+
+/* What does not jump needs fewer bins to be seen to sweep. */
+static bool sweeps_smoothly(const struct contour *c, const double hz[TRACE_POINTS])
+{
+    return is_smooth(c) && sweep_beyond(hz, 2 * c->bin_hz) >= SWEEPS;
+}
+
+/* They are never near each other. */
+static bool never_meet(const struct contour *a, const struct contour *b, const struct common *common)
+{
+    const double tolerance_hz = 2.5 * fmax(a->bin_hz, b->bin_hz);
+    bool meet = false;
+    for (uint32_t i = 0; i < TRACE_POINTS; i++)
+        meet = meet || fabs(common->a[i] - common->b[i]) < tolerance_hz;
+    return !meet;
+}
+
+/* One sweeps smoothly through what are now and then multiples of the other, and goes on. */
+static bool goes_across(const struct contour *a, const struct contour *b, const struct common *common)
+{
+    return (sweeps_smoothly(a, common->a) || sweeps_smoothly(b, common->b)) && never_meet(a, b, common) &&
+           share_kept(a, b, common, APART_ERROR) < APART_MOSTLY;
+}
+
+/* Share of the common time in which a is near a low multiple of b, though it may go from one to the next.
+ * What is still open is known to half a bin. */
+static double share_at_multiples(const struct common *common, double tolerance_hz)
 {
     uint32_t good = 0;
     for (uint32_t i = 0; i < TRACE_POINTS; i++) {
         const double ratio = common->a[i] / common->b[i];
         const int whole = ratio < LOW_MULTIPLES + 1 ? (int)(ratio + 0.5) : 0;
-        good += whole >= 2 && whole <= LOW_MULTIPLES && fabs(ratio - whole) < APART_ERROR * whole;
+        good += whole >= 2 && whole <= LOW_MULTIPLES &&
+                fabs(common->a[i] - whole * common->b[i]) <
+                    APART_ERROR * whole * common->b[i] + whole * tolerance_hz;
     }
-    return good >= APART_MOSTLY * TRACE_POINTS;
+    return good / (double)TRACE_POINTS;
 }
 
 bool related_is_harmonic(const struct contour *a, const struct contour *b)
@@ -158,20 +197,46 @@ bool related_is_harmonic(const struct contour *a, const struct contour *b)
     if (ratio >= 2 && ratio <= MAX_HARMONIC &&
         share_in_ratio(&common, ratio, HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY)
         return true;
-    if (keeps_to_multiples(&common))
-        return true;
+    const double at_multiples = share_at_multiples(&common, low->contrast > 0 ? 0 : low->bin_hz / 2);
+    if (at_multiples >= APART_MOSTLY)
+        return at_multiples >= MOSTLY || !goes_across(high, low, &common);
     return sweep && sweep_within(high, common.a) >= SWEEPS && sweep_within(low, common.b) >= SWEEPS &&
            share_in_ratio(&common, ratio_of(&common), HARMONIC_ERROR, low->bin_hz / 2) >= MOSTLY;
 }
 
+bool related_is_blurred(const struct contour *blurred, const struct contour *clear)
+{
+    if (is_smooth(blurred) || !is_smooth(clear) ||
+        related_overlap(blurred, clear) < BLURRED_WITHIN * related_duration(blurred))
+        return false;
+    struct common common;
+    sample_common(blurred, clear, &common);
+    double low = common.b[0], high = common.b[0];
+    for (uint32_t i = 1; i < TRACE_POINTS; i++) {
+        low = fmin(low, common.b[i]);
+        high = fmax(high, common.b[i]);
+    }
+    const double tolerance_hz = 2.5 * fmax(blurred->bin_hz, clear->bin_hz);
+    return blurred->low_hz > low - tolerance_hz && blurred->high_hz < high + tolerance_hz;
+}
+
 bool related_is_apart(const struct contour *a, const struct contour *b)
 {
-    if (!may_sweep(a) || !may_sweep(b))
+    if (!may_sweep(a) || !may_sweep(b) || !is_smooth(a) || !is_smooth(b))
         return false;
     struct common common;
     sample_common(a, b, &common);
     return sweep_within(a, common.a) >= SWEEPS && sweep_within(b, common.b) >= SWEEPS &&
            share_kept(a, b, &common, APART_ERROR) < APART_MOSTLY;
+}
+
+bool related_is_across(const struct contour *a, const struct contour *b)
+{
+    if (!may_sweep(a) && !may_sweep(b))
+        return false;
+    struct common common;
+    sample_common(a, b, &common);
+    return goes_across(a, b, &common);
 }
 
 /* It sweeps, and not as the other does (which may stand still), and lies so far above that it is not a path

@@ -16,6 +16,7 @@
 #define TRANSIENT_SCALE 10.0
 #define MOST_RISE_DB_S 0.5 /* of the background, by a call ... */
 #define MOST_RISE_DB 3.0   /* ... and by the longest one in all */
+#define MOST_UNHEARD_S 1.0 /* that a path waits for its call to come out from behind a blow */
 #define EXP_POWER 8.0F     /* exp(u) is taken as (1 + u / 8)^8 */
 
 /* The even number with no prime above 5 that is nearest to x. */
@@ -46,9 +47,11 @@ static void choose_bins(struct tracer *tracer)
     tracer->n_bins = last >= tracer->first_bin ? last - tracer->first_bin + 1 : 0;
     double step = ceil(setup->max_rate_hz_s / tracer->frame_rate / tracer->bin_hz);
     tracer->max_step = (uint32_t)fmin(fmax(step, 1), MAX_STEP);
-    tracer->stride = (tracer->n_bins + TILE - 1) / TILE * TILE;
+    tracer->stride = (tracer->n_bins + WIDE_LANES - 1) / WIDE_LANES * WIDE_LANES;
     tracer->tail_fall = (float)pow(10, -TAIL_FALL_DB_S / 10 / tracer->frame_rate);
-    tracer->n_history = (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + 4;
+    tracer->max_unheard = (uint32_t)ceil(MOST_UNHEARD_S * tracer->frame_rate);
+    tracer->n_history =
+        (uint32_t)ceil((setup->max_s + setup->delay_s) * tracer->frame_rate) + tracer->max_unheard + 4;
 }
 
 double tracer_cells_per_s(const struct tracer_setup *setup)
@@ -92,8 +95,10 @@ static bool make_arrays(struct tracer *tracer)
     good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
     good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
     good = (tracer->limited = calloc(tracer->n, sizeof(float))) && good;
-    good = (tracer->power_store = calloc(tracer->n / 2 + 1 + 3 * TILE, sizeof(float))) && good;
+    good = (tracer->power_store = calloc(tracer->n / 2 + 1 + TILE + 2 * WIDE_LANES, sizeof(float))) && good;
     tracer->power = tracer->power_store ? tracer->power_store + TILE : NULL;
+    good = (tracer->excess_store = calloc(k + 2 * TILE, sizeof(float))) && good;
+    tracer->excess = tracer->excess_store ? tracer->excess_store + TILE : NULL;
     good = (tracer->centre = calloc(history, sizeof *tracer->centre)) && good;
     good = (tracer->history_step = calloc(history * k, 1)) && good;
     good = (tracer->history_power = calloc(history * k, sizeof(float))) && good;
@@ -140,26 +145,17 @@ void tracer_destroy(struct tracer *tracer)
         return;
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
-    void *const arrays[] = {tracer->level,       tracer->floor,   tracer->smooth,       tracer->smooth_snr,
-                            tracer->occupancy,   tracer->gain,    tracer->best,         tracer->step,
-                            tracer->held,        tracer->limited, tracer->power_store,  tracer->tail,
-                            tracer->centre,      tracer->trail,   tracer->history_step, tracer->history_power,
-                            tracer->history_snr, tracer->trail_hz};
+    void *const arrays[] = {
+        tracer->level,         tracer->floor,       tracer->smooth,      tracer->smooth_snr,
+        tracer->occupancy,     tracer->gain,        tracer->best,        tracer->step,
+        tracer->held,          tracer->limited,     tracer->power_store, tracer->tail,
+        tracer->excess_store,  tracer->centre,      tracer->trail,       tracer->history_step,
+        tracer->history_power, tracer->history_snr, tracer->trail_hz};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);
     free_cells(&tracer->before);
     free(tracer);
-}
-
-/* What a sample of this size is worth: see limit_transients. `per_square` turns x2 into the part of u that
- * grows. */
-static inline lanes trust(lanes x, lanes per_square, lanes start)
-{
-    lanes e = lanes_greatest(start + x * x * per_square, lanes_all(0));
-    e *= e;
-    e *= e;
-    return lanes_all(1) / (lanes_all(1) + e * e);
 }
 
 /* Takes transients out before the spectrum. A sample is either sea and tone, normal with the frame's scale s,
@@ -170,80 +166,125 @@ static inline lanes trust(lanes x, lanes per_square, lanes start)
  * signal in a mixture of two normal laws (Kassam 1988, "Signal Detection in Non-Gaussian Noise", ch. 2) but
  * for the transients' own share x / b2. s is the mean size times sqrt(pi / 2), as of normal noise; the crest
  * of a steady tone is 1.25 s at any level, and one that fills only 0.4 of the frame still passes. */
-static void limit_transients(const float *in, float *out, uint32_t n)
+LANES_WIDE static void limit_transients(const float *in, float *out, uint32_t n, uint32_t n_heard)
 {
-    lanes sizes = lanes_all(0);
+    wide_lanes sizes = {0}, x;
     uint32_t i = 0;
-    for (; i + TILE <= n; i += TILE)
-        sizes += lanes_size(lanes_load(in + i));
-    double sum = lanes_sum(sizes);
+    for (; i + WIDE_LANES <= n; i += WIDE_LANES) {
+        wide_load(&x, in + i);
+        sizes += WIDE_SIZE(x);
+    }
+    double sum = 0;
+    for (uint32_t lane = 0; lane < WIDE_LANES; lane++)
+        sum += (double)sizes[lane];
     for (; i < n; i++)
         sum += fabsf(in[i]);
-    const double s = 1.2533 * sum / n, shape = 1 - 1 / (TRANSIENT_SCALE * TRANSIENT_SCALE);
+    const double s = 1.2533 * sum / n_heard, shape = 1 - 1 / (TRANSIENT_SCALE * TRANSIENT_SCALE);
     const double odds = TRANSIENT_SCALE * (1 - TRANSIENT_SHARE) / TRANSIENT_SHARE;
-    const lanes per_square = lanes_all((float)(shape / (2 * EXP_POWER * s * s + 1e-30)));
-    const lanes start = lanes_all(1 - (float)log(odds) / EXP_POWER);
-    for (i = 0; i + TILE <= n; i += TILE) {
-        const lanes x = lanes_load(in + i);
-        lanes_store(out + i, x * trust(x, per_square, start));
+    const float per_square = (float)(shape / (2 * EXP_POWER * s * s + 1e-30));
+    const float start = 1 - (float)log(odds) / EXP_POWER;
+    const wide_lanes none = {0};
+    for (i = 0; i + WIDE_LANES <= n; i += WIDE_LANES) {
+        wide_load(&x, in + i);
+        wide_lanes e = start + x * x * per_square;
+        e = WIDE_CHOOSE(e > none, e, none);
+        e *= e;
+        e *= e;
+        x *= 1.0F / (1.0F + e * e);
+        wide_store(out + i, &x);
     }
-    for (; i < n; i++)
-        out[i] = in[i] * trust(lanes_all(in[i]), per_square, start)[0];
+    for (; i < n; i++) {
+        float e = start + in[i] * in[i] * per_square;
+        e = e > 0 ? e : 0;
+        e *= e;
+        e *= e;
+        out[i] = in[i] * (1 / (1 + e * e));
+    }
 }
 
-/* The highest power within three bins of four cells. */
-static lanes loudest_near(const float *power)
+/* What each cell holds over its background: a line that was always there is in the background of the cells
+ * beside it too, and hides no call that crosses it. */
+static void find_excess(struct tracer *tracer)
 {
-    lanes loudest = lanes_load(power - NEAR);
-    for (int d = -NEAR + 1; d <= NEAR; d++)
-        loudest = lanes_greatest(loudest, lanes_load(power + d));
-    return loudest;
+    for (uint32_t k = 0; k < tracer->n_bins; k += TILE)
+        lanes_store(tracer->excess + k,
+                    lanes_load(tracer->power + tracer->first_bin + k) - lanes_load(tracer->level + k));
+    for (uint32_t k = tracer->n_bins; k < tracer->stride; k++)
+        tracer->excess[k] = 0;
 }
 
 /* From power to log-likelihood ratios, over the background or the tail of a path that has just been there. A
  * cell far below one beside it holds only what leaks from that. */
-static void weigh_cells(struct tracer *tracer)
+LANES_WIDE static void weigh_cells(struct tracer *tracer)
 {
-    const lanes slope = lanes_all(DESIGN_SNR / (1 + DESIGN_SNR)), offset = lanes_all(logf(1 + DESIGN_SNR));
-    const lanes remember = lanes_all((float)(1 / (OCCUPANCY_S * tracer->frame_rate)));
+    const float slope = DESIGN_SNR / (1 + DESIGN_SNR), offset = logf(1 + DESIGN_SNR);
+    const float remember = (float)(1 / (OCCUPANCY_S * tracer->frame_rate)), fall = tracer->tail_fall;
+    const wide_lanes one = WIDE_ALL(1), none = {0}, flank = WIDE_ALL(FLANK_GAIN), most = WIDE_ALL(MAX_GAIN);
     float *snrs = tracer->history_snr + (size_t)tracer_row(tracer, tracer->frame) * tracer->stride;
-    for (uint32_t k = 0; k < tracer->n_bins; k += TILE) {
-        const lanes power = lanes_load(tracer->power + tracer->first_bin + k);
-        const lanes leak = lanes_all(LEAK_SHARE) * loudest_near(tracer->power + tracer->first_bin + k);
-        const lanes level = lanes_load(tracer->level + k), snr = power / level;
-        lanes occupancy = lanes_load(tracer->occupancy + k), smooth = lanes_load(tracer->smooth + k);
-        lanes floor = lanes_load(tracer->floor + k);
-        lanes gain = slope * snr / lanes_greatest(lanes_all(1), floor) - offset;
-        gain = lanes_least(gain, lanes_all(MAX_GAIN));
-        gain = lanes_choose((power < leak) & (gain > lanes_all(FLANK_GAIN)), lanes_all(FLANK_GAIN), gain);
-        lanes_store(tracer->gain + k, gain);
-        lanes_store(snrs + k, snr);
-        occupancy +=
-            (lanes_choose(snr > lanes_all(OCCUPANCY_SNR), lanes_all(1), lanes_all(0)) - occupancy) * remember;
-        lanes_store(tracer->occupancy + k, occupancy);
-        smooth += (power - smooth) * lanes_all(SMOOTHING);
-        lanes_store(tracer->smooth + k, smooth);
-        lanes snr_smooth = lanes_load(tracer->smooth_snr + k);
-        snr_smooth += (snr - snr_smooth) * lanes_all(SMOOTHING);
-        lanes_store(tracer->smooth_snr + k, snr_smooth);
-        lanes_store(tracer->floor + k, lanes_greatest(snr_smooth * lanes_load(tracer->tail + k),
-                                                      floor * lanes_all(tracer->tail_fall)));
+    const float *powers = tracer->power + tracer->first_bin, *excesses = tracer->excess;
+    find_excess(tracer);
+    for (uint32_t k = 0; k < tracer->n_bins; k += WIDE_LANES) {
+        wide_lanes power, near, loudest, level, floor, occupancy, smooth, smooth_snr, tail;
+        wide_load(&power, powers + k);
+        wide_load(&loudest, excesses + k);
+        for (int d = 1; d <= NEAR; d++) {
+            wide_load(&near, excesses + k - d);
+            loudest = WIDE_CHOOSE(near > loudest, near, loudest);
+            wide_load(&near, excesses + k + d);
+            loudest = WIDE_CHOOSE(near > loudest, near, loudest);
+        }
+        wide_load(&level, tracer->level + k);
+        wide_load(&floor, tracer->floor + k);
+        const wide_lanes snr = power / level, over = WIDE_CHOOSE(floor > one, floor, one);
+        wide_lanes gain = slope * snr / over - offset;
+        gain = WIDE_CHOOSE(gain < most, gain, most);
+        gain = WIDE_CHOOSE((power < LEAK_SHARE * loudest) & (gain > flank), flank, gain);
+        wide_store(tracer->gain + k, &gain);
+        wide_store(snrs + k, &snr);
+        wide_load(&occupancy, tracer->occupancy + k);
+        occupancy += (WIDE_CHOOSE(snr > OCCUPANCY_SNR, one, none) - occupancy) * remember;
+        wide_store(tracer->occupancy + k, &occupancy);
+        wide_load(&smooth, tracer->smooth + k);
+        smooth += (power - smooth) * SMOOTHING;
+        wide_store(tracer->smooth + k, &smooth);
+        wide_load(&smooth_snr, tracer->smooth_snr + k);
+        smooth_snr += (snr - smooth_snr) * SMOOTHING;
+        wide_store(tracer->smooth_snr + k, &smooth_snr);
+        wide_load(&tail, tracer->tail + k);
+        tail *= smooth_snr;
+        floor *= fall;
+        floor = WIDE_CHOOSE(tail > floor, tail, floor);
+        wide_store(tracer->floor + k, &floor);
     }
+}
+
+/* The power of the frame that is held. */
+static void hear_frame(struct tracer *tracer)
+{
+    uint32_t n_heard = unheard_silence(tracer);
+    limit_transients(tracer->held, tracer->limited, tracer->n, n_heard);
+    double good = unheard_make_good(tracer);
+    if (good <= 0)
+        return; /* it stays as it was */
+    spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
+    for (uint32_t k = 0; k < tracer->n_bins && good > 1; k++)
+        tracer->power[tracer->first_bin + k] *= (float)good;
 }
 
 static void take_frame(struct tracer *tracer, const struct trace_sink *sink)
 {
-    limit_transients(tracer->held, tracer->limited, tracer->n);
-    spectrum_power(tracer->spectrum, tracer->limited, tracer->power);
     uint32_t row = tracer_row(tracer, tracer->frame);
     const float *power = tracer->power + tracer->first_bin;
-    memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
+    hear_frame(tracer);
     double samples = (double)tracer->n_shifted + (tracer->n - 1) / 2.0;
     tracer->centre[row] = (double)tracer->origin + samples * tracer->setup.factor - tracer->setup.late_frames;
     tracer->newest = tracer->frame;
     bool ready = background_is_ready(tracer->background);
     background_push(tracer->background, power, tracer->level);
+    unheard_replace(tracer);
+    memcpy(tracer->history_power + (size_t)row * tracer->stride, power, tracer->n_bins * sizeof *power);
     weigh_cells(tracer);
+    unheard_clear(tracer);
     for (uint32_t k = 0; k < tracer->n_bins && !ready; k++)
         tracer->gain[k] = -1;
     paths_advance(tracer, sink);

@@ -11,6 +11,7 @@
 #define CALL_TONES_TRACE_H
 
 #include "base/status.h"
+#include "call/gate.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -61,6 +62,8 @@ struct tracer_setup {
 /* Whether a contour (traced whole) stays where it is, but for single cells: a machine's line drifts by less
  * than 1 % in 10 s, a short one cannot be told so finely. */
 bool contour_is_flat(const struct contour *contour);
+/* Whether its second half does so: a line that rose out of noise, or was first traced beside another one. */
+bool contour_settles(const struct contour *contour);
 
 struct tracer;
 
@@ -74,6 +77,9 @@ void tracer_push(struct tracer *tracer, const float *samples, uint32_t n, const 
 void tracer_end(struct tracer *tracer, uint64_t next_frame, const struct trace_sink *sink);
 /* From the next samples on the own source's tail is heard in [low_hz, high_hz) (`true`), or no more. */
 void tracer_set_tail(struct tracer *tracer, double low_hz, double high_hz, bool is_heard);
+/* What the own source's last impulse covers of the gate's band number b (below GATE_BANDS), as far as it is
+ * known: cells of those frames say nothing (tones_unheard.c). */
+void tracer_set_masked(struct tracer *tracer, uint32_t b, const struct gate_tail_band *band);
 /* Contours that are open now: their times, hz, low_hz, high_hz, bin_hz and mean_square
  * only. Returns how many were written. */
 uint32_t tracer_get_open(struct tracer *tracer, struct contour *out, uint32_t max_count);

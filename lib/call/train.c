@@ -2,6 +2,11 @@
 #include "call/train.h"
 #include "base/median.h"
 #include "base/units.h"
+#include "call/certainty.h"
+#include <math.h>
+
+#define BENEFIT 1.5 /* of the doubt, for one pulse beside the median of many: a judgement, no source */
+#define DOUBTS 2.0  /* standard deviations, likewise */
 
 static double snr_of(const struct pulse *pulse)
 {
@@ -57,4 +62,40 @@ bool train_fits(const struct train *train, const struct train_shape *shape)
            train->length_s >= shape->min_length_s && train->length_s <= shape->max_length_s &&
            train->sweep_hz_s >= shape->min_sweep_hz_s && train->sweep_hz_s <= shape->max_sweep_hz_s &&
            train->bandwidth_hz >= shape->min_bandwidth_hz && train->bandwidth_hz <= shape->max_bandwidth_hz;
+}
+
+bool train_is_narrow(const struct pulse *pulse, const struct train_shape *shape)
+{
+    return (double)pulse->shape.bandwidth_hz * BENEFIT < shape->min_bandwidth_hz;
+}
+
+/* The Cramer-Rao bound of a sweep rate (Rife and Boorstyn's case of a quadratic phase, from memory: variance
+ * 90 / (pi^2 T^4 E/N0) of a rectangular pulse). */
+static double sweep_doubt(const struct pulse *pulse, const struct call_class *call_class)
+{
+    double length_s = pulse->shape.length_s, width_hz = call_class->high_hz - call_class->low_hz;
+    double energy = pulse->snr * width_hz * call_class->train.pulse_s; /* over the noise's density */
+    return sqrt(90 / fmax(energy, 1e-9)) / (M_PI * fmax(length_s * length_s, 1e-18));
+}
+
+bool train_may_have(const struct pulse *pulse, const struct call_class *call_class)
+{
+    const struct train_shape *shape = &call_class->train;
+    double length_s = pulse->shape.length_s, bandwidth_hz = pulse->shape.bandwidth_hz;
+    double sweep_hz_s = pulse->shape.sweep_hz_s, doubt = DOUBTS * sweep_doubt(pulse, call_class);
+    return !train_is_narrow(pulse, shape) && bandwidth_hz <= shape->max_bandwidth_hz * BENEFIT &&
+           length_s * BENEFIT >= shape->min_length_s && length_s <= shape->max_length_s * BENEFIT &&
+           sweep_hz_s + doubt >= shape->min_sweep_hz_s && sweep_hz_s - doubt <= shape->max_sweep_hz_s;
+}
+
+void train_measure(const struct train *train, const struct call_class *call_class, double out[CALL_MEASURES])
+{
+    const struct train_shape *shape = &call_class->train;
+    out[TRAIN_EXCESS] = log1p(fmax(0, train->excess));
+    out[TRAIN_STRAYS] = log(0.1 + train->strays);
+    out[TRAIN_JITTER] = log(0.01 + train->jitter / shape->max_jitter);
+    out[TRAIN_LIKENESS] = train->likeness;
+    out[TRAIN_LENGTH] = fabs(log(fmax(1e-6, train->length_s) / shape->pulse_s));
+    out[TRAIN_BANDWIDTH] = log(fmax(1e-3, train->bandwidth_hz / (call_class->high_hz - call_class->low_hz)));
+    out[TRAIN_STRENGTH] = fmin(30, train->snr_db - shape->min_snr_db);
 }

@@ -15,6 +15,9 @@ struct train {
     double start_frame, end_frame;
     double interval_frames; /* median between neighbouring pulses (a missed one accounted for) */
     double jitter;          /* root mean square of ln(interval ratio) */
+    double excess;          /* nats by which it is more than chance than its class asks for */
+    double strays;          /* pulses that come at random, as many as one interval has */
+    double likeness;        /* mean of its neighbours' (pulse_shape.h), none below 0 */
     double snr_db;          /* medians of the pulses', as the rest */
     double centroid_hz, bandwidth_hz, length_s, sweep_hz_s;
     double start_energy, end_energy;
@@ -39,5 +42,13 @@ void train_describe(const struct train_pulses *pulses, double *scratch, double *
 
 /* Whether pulses such as these can be of the class: centroid, length and sweep within its limits. */
 bool train_fits(const struct train *train, const struct train_shape *shape);
+/* Whether one pulse that looks so can be of the class: within the same limits, half as far again, of its
+ * sweep by as much as the noise lets it be known. */
+bool train_may_have(const struct pulse *pulse, const struct call_class *call_class);
+/* Whether it is narrower in frequency than any pulse of the class: a ping. */
+bool train_is_narrow(const struct pulse *pulse, const struct train_shape *shape);
+
+/* What its certainty rests on (call/certainty.h); class: of its pulses. */
+void train_measure(const struct train *train, const struct call_class *call_class, double out[CALL_MEASURES]);
 
 #endif

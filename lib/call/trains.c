@@ -33,6 +33,7 @@ enum status trains_create(const struct call_class *call_class, double rate_hz, s
     trains->deviation[WIDE] = shape->max_jitter;
     for (int spread = NARROW; spread <= WIDE; spread++)
         trains->ln_peak[spread] = -log(sqrt(2 * M_PI) * trains->deviation[spread]);
+    trains->ln_unmissed = -log(1 - DETECTED);
     for (int m = 1; m <= MAX_STEP; m++) {
         trains->ln_m[m] = log(m);
         trains->ln_steps[m] = log(DETECTED) + (m - 1) * log(1 - DETECTED);
@@ -55,6 +56,7 @@ void trains_reset(struct trains *trains)
 {
     memset(trains->open, 0, sizeof trains->open);
     trains->n_pulses = 0;
+    trains->hidden = (struct hidden){0};
 }
 
 static bool train_is_open(const struct trains *trains, uint32_t number)
@@ -77,6 +79,16 @@ static const struct pulse *member_of(const void *context, uint32_t i)
 {
     const struct trains *trains = context;
     return &trains_node(trains, trains->members[i])->pulse;
+}
+
+/* How far from chance a train is by now. */
+static void describe_chance(const struct trains *trains, const struct open_train *open, struct train *out)
+{
+    const struct link *link = &trains_node(trains, open->last)->links[open->last_link];
+    double rate = open->strays_s > 0 ? open->strays / open->strays_s : open->strays_hz;
+    out->excess = open->excess + open->best_total;
+    out->strays = rate * out->interval_frames / trains->rate_hz;
+    out->likeness = link->n > 1 ? link->alike / (link->n - 1) : 0;
 }
 
 /* Gives what is new of a train. */
@@ -113,6 +125,7 @@ static void give(struct trains *trains, struct open_train *open, const struct tr
     open->given = open->last;
     open->given_time_s = trains_node(trains, open->last)->time_s;
     train.machine = steady;
+    describe_chance(trains, open, &train);
     sink->take(sink->context, &train);
 }
 
@@ -138,6 +151,8 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
     double jitter = trains_walked_jitter(trains, n);
     if (jitter > shape->max_jitter || (jitter < shape->min_jitter && n < MACHINE_PULSES))
         return;
+    if (node->pulse.foreign && jitter >= shape->min_jitter)
+        return;
     n = trains_find_certain(trains, n, shape->min_pulses + hidden);
     if (n == 0)
         return;
@@ -151,7 +166,9 @@ static void try_to_open(struct trains *trains, uint32_t best, const struct train
                                 .last_link = best,
                                 .evidence = MOST_EVIDENCE,
                                 .best = number,
-                                .best_link = best};
+                                .best_link = best,
+                                .excess = trains->certain_excess,
+                                .strays_hz = trains->certain_strays_hz};
     open->given = trains->members[n - 1] - 1; /* wraps to "none" before the very first pulse */
     link->train = open->number;
     give(trains, open, sink, rejections);
@@ -271,16 +288,20 @@ void trains_push(struct trains *trains, const struct pulse *pulse, const struct 
         try_to_open(trains, best, sink, rejections);
 }
 
+/* Whether a train has been silent too long since that pulse of it. */
+static bool is_silent_since(const struct trains *trains, uint64_t number, uint32_t link, double time_s)
+{
+    const struct node *node = trains_node(trains, number);
+    return !trains_remember(trains, number) ||
+           time_s - node->time_s > END_INTERVALS * exp(node->links[link].ln_interval);
+}
+
+/* What has added nothing to a train for as long as silence ends it is chance, and does not hold it back. */
 void trains_advance(struct trains *trains, double frame, const struct train_sink *sink, uint64_t *rejections)
 {
     for (int t = 0; t < MAX_OPEN; t++) {
         struct open_train *open = &trains->open[t];
-        if (!open->number)
-            continue;
-        const struct node *end = trains_node(trains, open->last);
-        double interval = exp(end->links[open->last_link].ln_interval);
-        if (!trains_remember(trains, open->last) ||
-            frame / trains->rate_hz - end->time_s > END_INTERVALS * interval)
+        if (open->number && is_silent_since(trains, open->best, open->best_link, frame / trains->rate_hz))
             end_train(trains, open, sink, rejections);
     }
 }
@@ -291,12 +312,14 @@ void trains_finish(struct trains *trains, const struct train_sink *sink, uint64_
         if (trains->open[t].number)
             end_train(trains, &trains->open[t], sink, rejections);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1); k--)
-        rejections[REJECT_NO_RHYTHM] += trains_node(trains, k - 1)->owner == 0;
+        rejections[trains_node(trains, k - 1)->pulse.foreign ? REJECT_SHAPE : REJECT_NO_RHYTHM] +=
+            trains_node(trains, k - 1)->owner == 0;
     trains_reset(trains);
 }
 
 void trains_hide(struct trains *trains, double start_frame, double end_frame, uint64_t *rejections)
 {
+    hidden_add(&trains->hidden, start_frame / trains->rate_hz, end_frame / trains->rate_hz);
     for (uint64_t k = trains->n_pulses; k > 0 && trains_remember(trains, k - 1); k--) {
         struct node *node = trains_node(trains, k - 1);
         if (node->pulse.frame < start_frame)

@@ -5,9 +5,9 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* Of the pulses around, this share counts as strays where chains are only compared: most may be the chain's
- * own. */
-#define RANK_SHARE 0.25
+/* Of the pulses around that are of no train yet, this share counts as strays where chains are only compared:
+ * the rest may be the chain's own. */
+#define RANK_SHARE 0.5
 
 double trains_fit_level(double difference_db, double spread_db)
 {
@@ -17,7 +17,7 @@ double trains_fit_level(double difference_db, double spread_db)
 
 /* Looks how often pulses of the newest one's level and look come: the density of those before it, each spread
  * as the steps of a chain are. */
-static void look_around(struct trains *trains, const struct node *node)
+static void look_around(struct trains *trains, struct node *node)
 {
     double span_s = RATE_INTERVALS * trains->call_class.train.max_interval_s, sum = 0;
     uint64_t last = trains->n_pulses - 1;
@@ -29,15 +29,17 @@ static void look_around(struct trains *trains, const struct node *node)
         if (node->time_s - other->time_s > span_s)
             break;
         bool near = fabs(difference_db) <= LEVEL_GATE_DB;
-        double likeness = near ? pulse_shape_likeness(&node->pulse.shape, &other->pulse.shape) : 0;
+        double likeness = near ? trains_likeness(node, other) : 0;
         around->likeness[around->n++] = likeness;
         if (around->n == SAMPLED)
             span_s = node->time_s - other->time_s;
-        if (near && other->owner != HIDDEN)
+        if (near && other->owner == 0)
             sum += trains_fit_level(difference_db, LEVEL_DEVIATION_DB) * exp(likeness);
     }
     double rate = sum / fmax(span_s, trains->call_class.train.min_interval_s);
-    around->ln_rate = log(fmax(RANK_SHARE * rate, trains_noise_rate(trains, node->pulse.snr)) + RATE_FLOOR);
+    double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
+    double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, STEADY_DEVIATION_DB);
+    node->ln_rate = log(fmax(RANK_SHARE * rate, noise) + RATE_FLOOR);
 }
 
 /* Takes a link into a pulse's list, which keeps the best few. */
@@ -84,19 +86,50 @@ static uint32_t likeliest_steps(const struct trains *trains, double ratio)
 }
 
 /* A chain of two pulses. */
-static struct link first_pair(uint64_t number, double time_s, double ln_interval, double score,
-                              double ln_rate)
+static struct link first_pair(uint64_t number, const struct node *from, const struct node *node,
+                              double ln_interval, double score)
 {
     return (struct link){.previous = number,
                          .first = number,
-                         .first_time_s = time_s,
+                         .first_time_s = from->time_s,
                          .n = 2,
                          .steps = 1,
                          .ln_interval = ln_interval,
                          .gain = score,
                          .score = {score, score},
-                         .ln_rates = ln_rate,
-                         .rank = score - ln_rate};
+                         .ln_rates = from->ln_rate + node->ln_rate,
+                         .rank = score - from->ln_rate - node->ln_rate};
+}
+
+/* How many of the m - 1 beats that were missed after `from` the own source covers, or its echo: nobody could
+ * have heard them. */
+static uint32_t hidden_beats(const struct trains *trains, const struct node *from, double step_s, uint32_t m)
+{
+    uint32_t n = 0;
+    for (uint32_t i = 1; i < m && trains->hidden.n > 0; i++)
+        n += hidden_is_near(&trains->hidden, from->time_s + i * step_s, trains->call_class.train.echo_s);
+    return n;
+}
+
+/* The number of intervals and what it costs; where beats are hidden more of them may be likelier than where
+ * each that is missed speaks against the train. */
+static uint32_t choose_steps(const struct trains *trains, const struct node *from, double interval,
+                             double ratio, double *ln_steps)
+{
+    uint32_t m = likeliest_steps(trains, ratio), best = m;
+    double most = -INFINITY;
+    for (uint32_t k = m; k == m || (trains->hidden.n > 0 && k <= MAX_STEP); k++) {
+        double d = ratio - trains->ln_m[k];
+        double missed =
+            trains->ln_steps[k] + hidden_beats(trains, from, interval / k, k) * trains->ln_unmissed;
+        double fit = missed + fmax(ln_density(trains, NARROW, d), ln_density(trains, WIDE, d));
+        if (fit > most) {
+            most = fit;
+            best = k;
+            *ln_steps = missed;
+        }
+    }
+    return best;
 }
 
 /* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
@@ -105,26 +138,27 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
     const struct train_shape *shape = &trains->call_class.train;
     const struct node *from = trains_node(trains, number);
     double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
-    double ln_interval = log(interval), ln_rate = trains->around.ln_rate;
+    double ln_interval = log(interval);
     double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
     struct link best = {.rank = -INFINITY};
     if (interval <= shape->max_interval_s && from->owner == 0)
-        best = first_pair(number, from->time_s, ln_interval, -ln_interval - trains->ln_range - cost, ln_rate);
+        best = first_pair(number, from, node, ln_interval, -ln_interval - trains->ln_range - cost);
     for (uint32_t i = 0; i < from->n_links; i++) {
         const struct link *link = &from->links[i];
         if (from->owner && link->train != from->owner)
             continue;
         double ratio = ln_interval - link->ln_interval;
-        uint32_t m = likeliest_steps(trains, ratio);
+        double ln_steps = 0;
+        uint32_t m = choose_steps(trains, from, interval, ratio, &ln_steps);
         double d = ratio - trains->ln_m[m];
         double step_s = interval / m; /* a chain may drift, but not out of its class */
         if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
             step_s > shape->max_interval_s)
             continue;
-        double common = trains->ln_steps[m] - ln_interval - cost;
+        double common = ln_steps - ln_interval - cost;
         double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
         double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
-        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - ln_rate;
+        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - node->ln_rate;
         if (rank <= best.rank)
             continue;
         best = (struct link){.previous = number,
@@ -138,7 +172,7 @@ static void link_from(const struct trains *trains, struct node *node, uint64_t n
                              .ln_ratio = d,
                              .gain = fmax(gain[NARROW], gain[WIDE]),
                              .score = {score[NARROW], score[WIDE]},
-                             .ln_rates = link->ln_rates + ln_rate,
+                             .ln_rates = link->ln_rates + node->ln_rate,
                              .alike = link->alike,
                              .rank = rank};
     }
@@ -192,11 +226,11 @@ static void link_back(struct trains *trains, struct node *node)
         if (gap > MAX_STEP * shape->max_interval_s)
             break;
         if (gap >= shape->min_interval_s && from->owner != HIDDEN &&
+            from->pulse.foreign == node->pulse.foreign &&
             fabs(node->level_db - from->level_db) <= LEVEL_GATE_DB)
             link_from(trains, node, k - 1,
-                      last - k < trains->around.n
-                          ? trains->around.likeness[last - k]
-                          : pulse_shape_likeness(&node->pulse.shape, &from->pulse.shape));
+                      last - k < trains->around.n ? trains->around.likeness[last - k]
+                                                  : trains_likeness(node, from));
     }
 }
 
@@ -204,7 +238,7 @@ void trains_add_node(struct trains *trains, const struct pulse *pulse, uint64_t 
 {
     struct node *node = trains_node(trains, trains->n_pulses);
     if (trains->n_pulses >= RING && node->owner == 0)
-        rejections[REJECT_NO_RHYTHM]++;
+        rejections[node->pulse.foreign ? REJECT_SHAPE : REJECT_NO_RHYTHM]++;
     double time_s = pulse->frame / trains->rate_hz;
     node->time_s = time_s;
     node->pulse = *pulse;

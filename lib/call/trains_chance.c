@@ -18,7 +18,7 @@ static uint32_t competing_step(double level_db)
     return (uint32_t)fmin(COMPETING_STEPS - 1, fmax(0, level_db / COMPETING_STEP_DB));
 }
 
-static struct competitors gather_competitors(struct trains *trains, uint32_t n)
+static struct competitors gather_competitors(struct trains *trains, uint32_t n, uint32_t least)
 {
     double end = trains_node(trains, trains->members[0])->time_s;
     double start = trains_node(trains, trains->members[n - 1])->time_s;
@@ -26,7 +26,7 @@ static struct competitors gather_competitors(struct trains *trains, uint32_t n)
     struct competitors found = {0};
     uint32_t member = 0;
     const struct node *one = trains_node(trains, trains->members[0]);
-    const struct node *other = trains_node(trains, trains->members[n / 2]);
+    const struct node *other = trains_node(trains, trains->members[least / 2]); /* the first may be chance */
     double least_db = INFINITY, most_db = -INFINITY;
     for (uint32_t i = 0; i < n; i++) {
         double level_db = trains_node(trains, trains->members[i])->level_db;
@@ -97,7 +97,7 @@ static double noise_about(const struct trains *trains, double level_db, double s
 /* The rate at which stray pulses compete with one of the chain's n: noise, and those that noise does not
  * explain. A chain picked out of many strays has taken some of them for its own, which is made good: the
  * share that strays have among all; and since they are counted over a short time, one more and a standard
- * deviation are added. */
+ * deviation of theirs are added (not of the noise, which is known). */
 static double competing_rate(const struct trains *trains, const struct node *node, double spread_db,
                              const struct competitors *found, uint32_t n)
 {
@@ -105,7 +105,7 @@ static double competing_rate(const struct trains *trains, const struct node *nod
     double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, spread_db);
     double around = competing_about(trains, node->level_db, spread_db);
     double excess = fmax(0, around - noise_about(trains, node->level_db, spread_db) * found->time_s);
-    return (excess * (1 + n / (around + n)) + 1 + sqrt(around)) / found->time_s + noise + RATE_FLOOR;
+    return (excess * (1 + n / (around + n)) + 1 + sqrt(excess)) / found->time_s + noise + RATE_FLOOR;
 }
 
 /* How many of the chain's n are most surely more than chance, if its levels spread so, and how surely. */
@@ -138,18 +138,22 @@ static uint32_t find_surest(const struct trains *trains, const struct competitor
  * together. Levels are steady or sweep, at even odds. */
 uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 {
-    struct competitors found = gather_competitors(trains, n);
+    struct competitors found = gather_competitors(trains, n, least);
     double over = log(2);
     uint32_t wide = find_surest(trains, &found, n, least, LEVEL_DEVIATION_DB, &over);
     uint32_t steady = find_surest(trains, &found, n, least, STEADY_DEVIATION_DB, &over);
+    if (steady == 0 && wide == 0)
+        return 0;
+    const struct node *newest = trains_node(trains, trains->members[0]);
+    double spread_db = steady ? STEADY_DEVIATION_DB : LEVEL_DEVIATION_DB;
+    trains->certain_excess = over - log(2);
+    trains->certain_strays_hz = competing_rate(trains, newest, spread_db, &found, n);
     return steady ? steady : wide;
 }
 
 bool trains_may_be_certain(const struct trains *trains, const struct link *link)
 {
-    double judged = fmin(1, JUDGED_PULSES / (double)link->n), steps = judged * link->n - 1;
-    double low_rate = 1 / (RATE_INTERVALS * trains->call_class.train.max_interval_s) + RATE_FLOOR;
+    double judged = fmin(1, JUDGED_PULSES / (double)link->n);
     double score = fmax(link->score[NARROW], link->score[WIDE]) + link->alike - link->ln_rates;
-    return judged * score - steps * log(FEWEST_SHARE) >
-           log(3600 * low_rate / trains->call_class.false_per_hour);
+    return judged * (score - link->n * log(FEWEST_SHARE)) > log(3600 / trains->call_class.false_per_hour);
 }

@@ -3,6 +3,7 @@
 #ifndef CALL_TRAINS_INSIDE_H
 #define CALL_TRAINS_INSIDE_H
 
+#include "call/hidden.h"
 #include "call/trains.h"
 #include <math.h>
 #include <stdbool.h>
@@ -49,6 +50,7 @@ struct link {
 struct node {
     struct pulse pulse;
     double time_s, level_db;
+    double ln_rate; /* of the rate at which pulses such as this come, by which chains are compared */
     uint32_t owner; /* train that has claimed it; 0 none, HIDDEN */
     uint32_t n_links;
     struct link links[LINKS];
@@ -65,6 +67,7 @@ struct open_train {
     double total, best_total; /* the same without limits, and where it was greatest: */
     uint64_t best;            /* pulse and link there: what follows, if the train ends, was chance */
     uint32_t best_link;
+    double excess, strays_hz; /* when it was opened */
     bool machine;
 };
 
@@ -72,7 +75,6 @@ struct open_train {
 struct around {
     uint32_t n;
     double likeness[SAMPLED]; /* [n], the latest first; 0 of those far from its level */
-    double ln_rate;           /* of the rate at which such pulses come, by which chains are compared */
 };
 
 struct trains {
@@ -81,18 +83,21 @@ struct trains {
     struct noise_rate noise;
     double ln_peak[2], deviation[2]; /* of ln(interval ratio): a quarter of max_jitter, and max_jitter */
     double ln_steps[MAX_STEP + 1];   /* ln p_d (1 - p_d)^(m - 1) */
+    double ln_unmissed;              /* that a beat which nobody could hear is no miss */
     double ln_m[MAX_STEP + 1];
     double ln_limit[MAX_STEP]; /* ln of an interval's ratio from which m + 1 steps are likelier than m */
     double ln_range;           /* ln of ln(max / min interval) */
     struct around around;
     uint64_t n_pulses; /* taken */
     uint32_t n_trains;
+    struct hidden hidden; /* s */
     struct node *ring;
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
     float competing[COMPETING_STEPS]; /* strays by level, by how well they could take a member's place */
     double sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
+    double certain_excess, certain_strays_hz; /* of what trains_find_certain found last */
 };
 
 static inline struct node *trains_node(const struct trains *trains, uint64_t number)
@@ -114,9 +119,15 @@ static inline bool trains_remember(const struct trains *trains, uint64_t number)
  * cost the chain, as a factor. Strays are counted with the very weights with which pulses are tied, so that
  * whatever levels and shapes the strays of a sea have, a step by chance has an expected ratio near 1. */
 double trains_fit_level(double difference_db, double spread_db);
+static inline double trains_likeness(const struct node *a, const struct node *b)
+{
+    if (a->pulse.foreign != b->pulse.foreign)
+        return -INFINITY;
+    return pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape);
+}
 static inline double trains_fit_shape(const struct node *a, const struct node *b)
 {
-    return exp(fmin(0, pulse_shape_likeness(&a->pulse.shape, &b->pulse.shape)));
+    return exp(fmin(0, trains_likeness(a, b)));
 }
 
 /* Remembers a pulse and finds the chains that reach it, and how often pulses of its level come.

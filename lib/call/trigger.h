@@ -1,9 +1,10 @@
 /* The pulses of one class in one channel, from what a search finds in its band (call/pulse_search.h), which
  * classes with the same band and limits share.
  *
- * Whatever follows a pulse within the echo time belongs to it (surface and bottom echoes, the pulses inside a
- * sperm whale's click): of these the strongest is kept. So no class ever gives more than 1 / echo time pulses
- * a second. */
+ * What follows a pulse within the echo time and has a spectrum like its own belongs to it (surface and bottom
+ * echoes, the pulses inside a sperm whale's click): of these the strongest is kept. So is all that follows
+ * what is broadband or too long, unless that is a ping. Of at most four of an echo time the strongest of each
+ * look are given, so no class ever gives more than 4 / echo time pulses a second. */
 #ifndef CALL_TRIGGER_H
 #define CALL_TRIGGER_H
 
@@ -20,6 +21,8 @@ struct pulse {
                       background's mean square, in the band as its noise is whitened (call/whitened.h) */
     double energy; /* the band's energy up to the arrival since the last reset, Pa2 times input frames */
     struct pulse_shape shape;
+    bool
+        foreign; /* looks like no pulse of the class: it may be part of a machine's rhythm, but no animal's */
 };
 
 struct pulse_sink {
@@ -41,6 +44,8 @@ void trigger_reset(struct trigger *trigger);
 /* Takes what the search has found in the block that it has just taken. Adds to rejections[REJECT_COUNT].
  * Pulses come in order of arrival, at most an echo time and a pulse's length late. */
 void trigger_push(struct trigger *trigger, const struct pulse_sink *sink, uint64_t *rejections);
+/* Whether there is nothing to take: nothing was found in the last block, and no pulse waits. */
+bool trigger_is_idle(const struct trigger *trigger);
 /* Gives the pulse that still waits for its echoes. */
 void trigger_finish(struct trigger *trigger, const struct pulse_sink *sink);
 /* Input frame, counted from the last reset, before which no pulse will come any more. */

@@ -7,7 +7,7 @@
 
 #define SPARE_BLOCKS                                                                                         \
     16 /* for which the row has room before its history is moved to its front, at least, ... */
-#define SPARE_HISTORIES 3 /* ... or so many times the history */
+#define SPARE_HISTORIES 1 /* ... or so many times the history */
 
 struct part {
     double share; /* of the band's width */
@@ -91,16 +91,20 @@ static void find_weights(struct whitened *whitened)
             (float)(whitened->parts[p].share * sum / whitened->parts[p].median.mean_pa2);
 }
 
+LANES_WIDE static void add_weighted(const float *restrict power, float weight, uint32_t n,
+                                    float *restrict row)
+{
+    for (uint32_t i = 0; i < n; i++)
+        row[i] += weight * power[i];
+}
+
 /* Weights n slots from `first` on. */
 static void weight_slots(struct whitened *whitened, int64_t first, uint32_t n)
 {
     float *row = whitened->row + whitened->at + first;
     memset(row, 0, n * sizeof *row);
-    for (uint32_t p = 0; p < whitened->setup.parts.n; p++) {
-        const float *power = part_power(whitened, p) + first, weight = whitened->parts[p].weight;
-        for (uint32_t i = 0; i < n; i++)
-            row[i] += weight * power[i];
-    }
+    for (uint32_t p = 0; p < whitened->setup.parts.n; p++)
+        add_weighted(part_power(whitened, p) + first, whitened->parts[p].weight, n, row);
 }
 
 void whitened_push(struct whitened *whitened)

@@ -28,6 +28,12 @@ typedef int32_t wide_mask __attribute__((vector_size(32)));
 #define LANES_WIDE
 #endif
 
+#define WIDE_ALL(x) ((wide_lanes){0} + (x))
+/* Where the mask is set, yes; else no. */
+#define WIDE_CHOOSE(mask, yes, no) ((wide_lanes)(((mask) & (wide_mask)(yes)) | (~(mask) & (wide_mask)(no))))
+/* Without its sign. */
+#define WIDE_SIZE(x) ((wide_lanes)((wide_mask)(x)&INT32_MAX))
+
 /* By address: compilers pass such a register differently with and without AVX2. */
 static inline void wide_load(wide_lanes *out, const float *from)
 {

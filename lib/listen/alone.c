@@ -3,10 +3,15 @@
 #include "base/units.h"
 #include <math.h>
 
+#define RHYTHM 0.05 /* two intervals so much alike are a source's */
+
 void alone_reset(struct alone *alone, const struct call_class *classes, uint32_t n_classes, double rate_hz)
 {
-    *alone = (struct alone){
-        .classes = classes, .n_classes = n_classes, .rate_hz = rate_hz, .last_onset = -INFINITY};
+    *alone = (struct alone){.classes = classes,
+                            .n_classes = n_classes,
+                            .rate_hz = rate_hz,
+                            .last_onset = -INFINITY,
+                            .last_interval = NAN};
 }
 
 static bool fits(const struct call_class *class, const struct found_impulse *impulse)
@@ -20,12 +25,14 @@ static bool fits(const struct call_class *class, const struct found_impulse *imp
 void alone_take(struct alone *alone, const struct found_impulse *impulse)
 {
     double since = impulse->onset_frame - alone->last_onset;
+    bool in_rhythm = fabs(since - alone->last_interval) <= RHYTHM * since;
     alone->last_onset = impulse->onset_frame;
+    alone->last_interval = since;
     if (alone->waits && since < alone->classes[alone->waiting.class_index].sound.memory_s * alone->rate_hz)
         alone->waits = false;
     for (uint32_t c = 0; c < alone->n_classes && !alone->waits; c++) {
         const struct call_class *class = &alone->classes[c];
-        if (!fits(class, impulse) || since < class->sound.memory_s * alone->rate_hz)
+        if (in_rhythm || !fits(class, impulse) || since < class->sound.memory_s * alone->rate_hz)
             continue;
         alone->waits = true;
         alone->waiting =

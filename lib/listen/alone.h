@@ -1,7 +1,8 @@
 /* Impulses that stand alone: a hammer and airguns keep a rhythm, a charge does not. An impulse of the
  * reference channel is a sound of the first class of manner 'impulse' that it fits (T90 at most max_s,
  * rms90 min_snr_db above the background) when none
- * came for memory_s before it and none comes for as long after it. It stays an impulse too. */
+ * came for memory_s before it and none comes for as long after it, and the two intervals before it differ by
+ * more than 5 %: shots each 20 s are a rhythm too. It stays an impulse too. */
 #ifndef LISTEN_ALONE_H
 #define LISTEN_ALONE_H
 
@@ -16,7 +17,8 @@ struct alone {
     const struct call_class *classes; /* borrowed */
     uint32_t n_classes;
     double rate_hz;
-    double last_onset; /* -INFINITY before the first */
+    double last_onset;    /* -INFINITY before the first */
+    double last_interval; /* to it from the one before; NAN or INFINITY: none */
     bool waits;
     struct found_call waiting;
 };

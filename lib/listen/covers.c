@@ -3,11 +3,14 @@
 #include <math.h>
 #include <string.h>
 
-#define COVERED 0.5       /* share of a call's time, and of its band, that must be covered */
-#define BAND_SHARE 0.03   /* how exactly two detectors tell a frequency, as a share of it ... */
-#define BAND_HZ 2.0       /* ... and beside it */
-#define RHYTHM_ERROR 0.03 /* of an interval */
-#define MOST_MULTIPLE 4   /* missed pulses */
+#define COVERED 0.5         /* share of a call's time, and of its band, that must be covered */
+#define COVERED_BY_LINE 0.8 /* of its band */
+#define WINDOW_BINS 2.0     /* to which a tone is told at least, in bins of its spectrum */
+#define BAND_SHARE 0.03     /* how exactly two detectors tell a frequency, as a share of it ... */
+#define BAND_HZ 2.0         /* ... and beside it */
+#define SAME_S 0.015        /* how exactly two detectors tell a time, beside the window */
+#define RHYTHM_ERROR 0.03   /* of an interval */
+#define MOST_MULTIPLE 4     /* missed pulses */
 
 void covers_reset(struct covers *covers, const struct call_class *classes, uint32_t n_classes, double rate_hz)
 {
@@ -17,11 +20,18 @@ void covers_reset(struct covers *covers, const struct call_class *classes, uint3
     covers->rate_hz = rate_hz;
 }
 
-static bool shares_band(const struct found_call *sound, const struct found_call *call)
+/* A line keeps its frequency, and slow branches tell theirs finely: one that passes beside it, or across, is
+ * none of it. */
+static bool shares_band(const struct covers *covers, const struct found_call *sound,
+                        const struct found_call *call)
 {
-    double pad = BAND_HZ + BAND_SHARE * call->high_hz;
+    double pad = BAND_HZ + BAND_SHARE * call->high_hz, share = COVERED;
+    if (covers->classes[sound->class_index].sound.manner == MANNER_LINE && call->n_pulses == 0) {
+        pad = fmin(pad, WINDOW_BINS / covers->classes[call->class_index].tone.window_s);
+        share = COVERED_BY_LINE;
+    }
     double low = fmax(sound->low_hz - pad, call->low_hz), high = fmin(sound->high_hz + pad, call->high_hz);
-    return high >= low && high - low >= COVERED * (call->high_hz - call->low_hz);
+    return high >= low && high - low >= share * (call->high_hz - call->low_hz);
 }
 
 /* Pulses of one interval are of one machine; a whole multiple is the same with pulses missed. */
@@ -36,6 +46,20 @@ static bool shares_rhythm(const struct found_call *sound, const struct found_cal
     return whole <= MOST_MULTIPLE && fabs(fmax(ratio, 1 / ratio) / whole - 1) <= RHYTHM_ERROR;
 }
 
+/* A tone that begins and ends with a burst and runs through its frequency is it, however far its ends stray
+ * in the noise around. */
+static bool is_the_same(const struct covers *covers, const struct found_call *sound,
+                        const struct found_call *call)
+{
+    const struct call_class *class = &covers->classes[call->class_index];
+    double near_frames = (class->tone.window_s + SAME_S) * covers->rate_hz,
+           pad = BAND_HZ + BAND_SHARE * call->high_hz;
+    return covers->classes[sound->class_index].sound.manner == MANNER_BURST && class->form == CALL_TONE &&
+           fabs(sound->start_frame - call->start_frame) <= near_frames &&
+           fabs(sound->end_frame - call->end_frame) <= near_frames && sound->low_hz >= call->low_hz - pad &&
+           sound->high_hz <= call->high_hz + pad;
+}
+
 /* Frames of the call that the sound covers. A train is as wide as its class's band: the edges of bursts and
  * chips in it make pulses there. */
 static double covered_frames(const struct covers *covers, const struct found_call *sound,
@@ -44,7 +68,9 @@ static double covered_frames(const struct covers *covers, const struct found_cal
     enum manner manner = covers->classes[sound->class_index].sound.manner;
     bool edges = (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses > 0 &&
                  sound->high_hz >= call->low_hz && sound->low_hz <= call->high_hz;
-    if (!edges && (!shares_band(sound, call) || !shares_rhythm(sound, call)))
+    if (is_the_same(covers, sound, call))
+        return call->end_frame - call->start_frame;
+    if (!edges && (!shares_band(covers, sound, call) || !shares_rhythm(sound, call)))
         return 0;
     /* A tone is told to within its window: one that only touches the sound is full of it. */
     double window =

@@ -1,5 +1,6 @@
 /* Calls and what is no animal's: joined over the channels, withheld or given; see listen.h. */
 #include "base/units.h"
+#include "call/certainty.h"
 #include "listen/listen_inner.h"
 #include <math.h>
 #include <string.h>
@@ -14,17 +15,28 @@ static bool is_hidden(struct listen *listen, const struct found_call *found)
     return true;
 }
 
+/* A train is known with its last pulse; a machine's tone whose edges and beats made those pulses is known
+ * when it ends. So trains wait for their class's natural delay, at most TRAIN_WAITS_S. */
+#define TRAIN_WAITS_S 0.5
+
 void listen_take_call(void *context, uint32_t channel, const struct found_call *found)
 {
     struct listen *listen = context;
-    joiner_take(&listen->joiner, channel, found);
+    const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
+    struct found_call call = *found;
+    double until = found->end_frame + fmin(class->natural_delay_s, TRAIN_WAITS_S) * listen->setup.rate_hz;
+    if (class->animal && class->form == CALL_TRAIN && until > (double)call.known_frame)
+        call.known_frame = (uint64_t)until;
+    joiner_take(&listen->joiner, channel, &call);
 }
 
 static struct event *add_call(struct listen *listen, const struct joined_call *joined)
 {
     const struct found_call *found = &joined->found;
     const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
-    struct event *event = listen_add_event(listen, EVENT_CALL, found->known_frame);
+    const uint64_t last = listen->block_end > 0 ? listen->block_end - 1 : 0; /* at the end nothing waits */
+    struct event *event =
+        listen_add_event(listen, EVENT_CALL, found->known_frame < last ? found->known_frame : last);
     struct call *call = &event->as.call;
     *call = (struct call){
         .channel = joined->channel,
@@ -43,6 +55,7 @@ static struct event *add_call(struct listen *listen, const struct joined_call *j
         .mirror_deg = NAN,
         .certainty = class->certainty,
         .evidence = class->evidence};
+    memcpy(call->measures, found->measures, sizeof call->measures);
     memcpy(call->class_name, class->name, sizeof call->class_name);
     return event;
 }
@@ -96,11 +109,18 @@ static void take_sound_of_none(struct listen *listen, const struct joined_call *
     memcpy(call->against, against, n_against * sizeof against[0]);
 }
 
+/* A tone that just passes its class's limit is what noise gives false_per_hour of; its evidence grows with
+ * its level to the whole of the class's at SURE_DB above the limit. So one is no look yet, several are. */
+#define SURE_DB 4.0
+
 /* What an animal's call can say at most, where it is heard. */
 static double most_evidence(struct listen *listen, const struct found_call *found)
 {
     const struct call_class *class = &listen->setup.catalogue->classes[found->class_index];
     double most = song_evidence(&listen->song, class, found);
+    if (class->form == CALL_TONE)
+        most = fmin(most, class->evidence) *
+               fmin(1, fmax(STRUCK_EVIDENCE, (found->snr_db - class->tone.min_snr_db) / SURE_DB));
     return struck_begins(&listen->struck, class, found) ? fmin(most, STRUCK_EVIDENCE) : most;
 }
 
@@ -109,11 +129,12 @@ static void take_joined(void *context, const struct joined_call *joined)
     struct listen *listen = context;
     const struct found_call *found = &joined->found;
     const struct catalogue *catalogue = listen->setup.catalogue;
-    bool animal = catalogue->classes[found->class_index].animal;
+    const struct call_class *class = &catalogue->classes[found->class_index];
+    bool animal = class->animal;
     if (animal && is_hidden(listen, found))
         return;
-    double evidence = animal ? covers_evidence(&listen->covers, found) : 0;
-    if (animal && evidence <= 0 && catalogue->classes[found->class_index].evidence > 0) {
+    double left = animal ? covers_evidence(&listen->covers, found) : 0; /* of the most that one call has */
+    if (animal && left <= 0 && class->evidence > 0) {
         listen->n_covered[found->class_index]++;
         return;
     }
@@ -123,7 +144,10 @@ static void take_joined(void *context, const struct joined_call *joined)
         return;
     }
     struct event *event = add_call(listen, joined);
-    event->as.call.evidence = fmin(evidence, most_evidence(listen, found));
+    double certainty = certainty_find(&catalogue->certainty, class, found->measures);
+    double says = fmin(certainty_evidence(certainty, class), most_evidence(listen, found));
+    event->as.call.certainty = certainty;
+    event->as.call.evidence = fmax(0, says - (class->evidence - left));
     covers_keep_call(&listen->covers, found, event->counter);
 }
 

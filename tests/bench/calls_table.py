@@ -12,7 +12,7 @@ import sys
 
 from scipy import stats
 
-PIECES = ["pulses", "trains", "tones", "seas", "confounders", "pool", "costs"]
+PIECES = ["pulses", "trains", "tones", "seas", "confounders", "pool", "voices", "costs", "mixed"]
 TONE_GOALS = {"right whale upcall": 4.0, "delphinid whistle": 6.0}
 BUDGET = 7.0
 MARKERS = ("<!-- table of bench-calls -->\n", "<!-- end of the table -->\n")
@@ -114,25 +114,43 @@ def seas(table, piece):
                       first["d"] >= 4, "%d clicks, %d others" % (first["own"], first["others"]), piece["seed"])
 
 
-def calibration(table, piece):
-    bins = [[sum(s["calibration"][b][i] for s in piece["rows"]) for i in range(4)] for b in range(5)]
-    n, right, brier = (sum(b[i] for b in bins) for i in (0, 1, 3))
-    if n == 0:
+def judged_calls(pieces):
+    """Class, certainty and right of every animal's call; what a confounder makes is always wrong."""
+    return [(call[0], call[3], call[2]) for piece in pieces for row in piece["rows"] for call in row["judged"]]
+
+
+def score(calls):
+    """Brier score, base rate, skill over it (None where all are right, or none)."""
+    n = len(calls)
+    base = sum(c[2] for c in calls) / n
+    brier = sum((c[1] - c[2]) ** 2 for c in calls) / n
+    return brier, base, 1 - brier / (base * (1 - base)) if 0 < base < 1 else None
+
+
+def skill_text(calls):
+    brier, base, skill = score(calls)
+    return "Brier score %.3f, base rate %.2f, skill %s" % (brier, base, "-" if skill is None else "%.2f" % skill)
+
+
+def calibration(table, of, calls, seed):
+    if not calls:
         return
-    good = True
-    for b, (count, hits, stated, _) in enumerate(bins):
+    for b in range(5):
+        here = [c for c in calls if min(4, int(5 * c[1])) == b]
+        count, hits, stated = len(here), sum(c[2] for c in here), sum(c[1] for c in here)
         if count > 0:
             low, high = stats.beta.ppf(0.025, hits, count - hits + 1) if hits else 0, \
                 stats.beta.ppf(0.975, hits + 1, count - hits) if hits < count else 1
-            inside = low <= stated / count <= high
-            good = good and inside
-            table.add("certainty %.1f to %.1f" % (b / 5, (b + 1) / 5), "all seas",
+            table.add("certainty %.1f to %.1f" % (b / 5, (b + 1) / 5), of,
                       "stated %.2f, right %.2f (95 %%: %.2f to %.2f)" % (stated / count, hits / count, low, high),
-                      "stated inside the interval", inside, "%d calls" % count, piece["seed"])
-    base = right / n
-    skill = 1 - brier / n / (base * (1 - base)) if 0 < base < 1 else float("nan")
-    table.add("certainty", "all seas", "Brier score %.3f, base rate %.2f, skill %.2f" % (brier / n, base, skill),
-              "skill above 0", skill > 0, "%d calls" % n, piece["seed"])
+                      "stated inside the interval", low <= stated / count <= high, "%d calls" % count, seed)
+    skill = score(calls)[2]
+    table.add("certainty", of, skill_text(calls), "skill above 0", skill is not None and skill > 0,
+              "%d calls" % len(calls), seed)
+    for name in sorted({c[0] for c in calls}):
+        here = [c for c in calls if c[0] == name]
+        table.add("certainty of a class", name, "stated %.2f; %s" % (sum(c[1] for c in here) / len(here), skill_text(here)),
+                  "", None, "%d calls" % len(here), seed)
 
 
 def delays(table, piece):
@@ -147,6 +165,25 @@ def delays(table, piece):
             row["p50_s"], row["p99_s"], round(row["p50_s"] * sea["rate_hz"]), round(row["p99_s"] * sea["rate_hz"]),
             sea["rate_hz"] / 1000), "natural delay %.2f s and at most 0.1 s" % row["natural_delay_s"], over <= 0.1,
             row["n"], piece["seed"])
+
+
+def voices(table, piece):
+    """Each class by itself on its own call: found from what level, and when known."""
+    for row in piece["rows"]:
+        levels, shares = row["levels_db"], row["pd"]
+        reached = next((levels[i - 1] + (0.9 - shares[i - 1]) / (shares[i] - shares[i - 1]) * (levels[i] - levels[i - 1])
+                        for i in range(1, len(levels)) if shares[i] >= 0.9 > shares[i - 1]), None)
+        table.add("simulated call, Pd 0.9", row["class"], "%s (%s, at %g kHz)" % (
+            number(reached, "dB"), "envelope's peak over noise" if row["form"] == "train" else "cell over median noise",
+            row["rate_hz"] / 1000), "", None, row["trials"], piece["seed"])
+    for row in piece["rows"]:
+        if row["n_delays"] == 0:
+            continue
+        p50, p99, natural, rate = row["delay_p50_s"], row["delay_p99_s"], row["natural_delay_s"], row["rate_hz"]
+        table.add("class by itself: from a call's end to its entry", row["class"],
+                  "%.3f s (50th), %.3f s (99th): %d and %d samples at %g kHz" % (
+                      p50, p99, round(p50 * rate), round(p99 * rate), rate / 1000),
+                  "by design waits %.2f s, and at most 0.1 s" % natural, p99 <= natural + 0.1, row["n_delays"], piece["seed"])
 
 
 def upper(n):
@@ -240,10 +277,14 @@ def main():
     folder = sys.argv[1] if len(sys.argv) > 1 else "build/bench-calls"
     digest, pieces, stale = load(folder)
     table = Table()
-    for name, rows in (("pulses", pulses), ("trains", trains), ("tones", tones), ("seas", seas), ("seas", calibration),
-                       ("seas", delays), ("costs", costs)):
+    for name, rows in (("pulses", pulses), ("trains", trains), ("tones", tones), ("seas", seas),
+                       ("seas", delays), ("voices", voices), ("costs", costs)):
         if name in pieces:
             rows(table, pieces[name])
+    for of, names in (("seas and confounders", ("seas", "confounders")), ("mixed seas", ("mixed",))):
+        used = [pieces[name] for name in names if name in pieces]
+        if used:
+            calibration(table, of, judged_calls(used), used[0]["seed"])
     rows = pieces.get("confounders", {"rows": []})["rows"] + pieces.get("pool", {"rows": []})["rows"]
     if rows:
         seeds = sorted({str(p["seed"]) for p in [pieces[k] for k in ("confounders",) if k in pieces]} |

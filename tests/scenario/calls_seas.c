@@ -79,6 +79,25 @@ static void whistles_are_heard_between_shots(void **state)
     json_decref(result);
 }
 
+/* Blows each 2 s through most of it, a ship's lines, and song, upcalls, blue whales and fin whale song at
+ * once. */
+static void low_calls_are_heard_under_blows(void **state)
+{
+    (void)state;
+    static const struct {
+        const char *voice;
+        double recall;
+    } floors[] = {{"right whale upcall", 0.60}, {"humpback song", 0.75}, {"blue whale moan", 0.50}};
+    json_t *result = run_sea(4, scaled(0.2, 0.3, 1));
+    for (size_t i = 0; i < sizeof floors / sizeof floors[0]; i++) {
+        const json_t *row = row_of(json_object_get(result, "voices"), "voice", floors[i].voice);
+        assert_non_null(row);
+        assert_true(value(row, "recall") >= floors[i].recall - spread(floors[i].recall, value(row, "calls")));
+        assert_true(value(row, "precision") >= 0.90);
+    }
+    json_decref(result);
+}
+
 static void porpoises_are_told_from_everything_else(void **state)
 {
     (void)state;
@@ -180,6 +199,7 @@ int main(void)
         cmocka_unit_test(calls_are_matched_one_to_one),
         cmocka_unit_test(whistles_are_heard_among_confounders),
         cmocka_unit_test(whistles_are_heard_between_shots),
+        cmocka_unit_test(low_calls_are_heard_under_blows),
         cmocka_unit_test(porpoises_are_told_from_everything_else),
         cmocka_unit_test(confounders_alone_raise_no_alarm),
     };

@@ -1,6 +1,7 @@
 /* The call catalogue's loader: what is shipped loads; what is wrong is named with file, line and key. */
 #include "support/test.h"
 
+#include "call/certainty.h"
 #include "settings/catalogue.h"
 #include <math.h>
 #include <stdlib.h>
@@ -126,6 +127,62 @@ static void wrong_values_are_named(void **state)
                    "at most 31");
 }
 
+static const char good_certainty[] =
+    "source = \"invented for this test\"\ntone = { length = [0.5, 1.25] }\ntrain = { }\n"
+    "grades = { look_evidence = 2; look_false_per_hour = 1; act_evidence = 4; act_false_per_day = 0.4; "
+    "evidence_decay_s = 60 }\n";
+
+/* Loads the class and certainty.cfg, changed, from a folder of their own. */
+static enum status load_with_certainty(const char *from, const char *to, struct problems *problems,
+                                       struct catalogue *out)
+{
+    char text[1024], folder[64], path[128];
+    const char *at = strstr(good_certainty, from);
+    assert_non_null(at);
+    snprintf(text, sizeof text, "%.*s%s%s", (int)(at - good_certainty), good_certainty, to,
+             at + strlen(from));
+    make_folder(folder, good_tone, NULL);
+    snprintf(path, sizeof path, "%s/" CATALOGUE_CERTAINTY_FILE, folder);
+    FILE *file = fopen(path, "w");
+    assert_non_null(file);
+    fputs(text, file);
+    fclose(file);
+    enum status status = catalogue_load(folder, problems, NULL, out);
+    unlink(path);
+    drop_folder(folder);
+    return status;
+}
+
+static void what_certainty_rests_on_is_no_class(void **state)
+{
+    (void)state;
+    static const struct {
+        const char *from, *to, *word1, *word2;
+    } wrong[] = {
+        {"length", "lenght", "tone.lenght", "did you mean \"length\""},
+        {", 1.25]", "]", "tone.length", "allowed: [weight, usual value]"},
+        {"look_evidence = 2", "look_evidence = 5", "grades.act_evidence", "at least look_evidence, 5"},
+        {"evidence_decay_s = 60", "evidence_decay_s = 0", "grades.evidence_decay_s", "allowed: 1 to"},
+        {"train = { }", "", "train", "missing"}};
+    struct catalogue *catalogue = calloc(1, sizeof *catalogue);
+    struct problems none = {0};
+    assert_int_equal(load_with_certainty("0.5", "0.5", &none, catalogue), STATUS_OK);
+    assert_int_equal(catalogue->n_classes, 1);
+    assert_near(catalogue->certainty.tone.weight[TONE_LENGTH], 0.5, 0);
+    assert_near(catalogue->certainty.tone.usual[TONE_LENGTH], 1.25, 0);
+    assert_near(catalogue->certainty.act_evidence, 4, 0);
+    assert_near(catalogue->certainty.evidence_decay_s, 60, 0);
+    for (size_t i = 0; i < sizeof wrong / sizeof wrong[0]; i++) {
+        struct problems problems = {0};
+        assert_int_equal(load_with_certainty(wrong[i].from, wrong[i].to, &problems, catalogue),
+                         STATUS_BAD_FORMAT);
+        if (!strstr(problems.lines.data, wrong[i].word1) || !strstr(problems.lines.data, wrong[i].word2))
+            fail_msg("wanted \"%s\" and \"%s\" in: %s", wrong[i].word1, wrong[i].word2, problems.lines.data);
+        problems_destroy(&problems);
+    }
+    free(catalogue);
+}
+
 static void two_files_may_not_share_a_name(void **state)
 {
     (void)state;
@@ -163,6 +220,7 @@ int main(void)
         cmocka_unit_test(shipped_classes_load),
         cmocka_unit_test(classes_come_in_the_order_of_file_names),
         cmocka_unit_test(wrong_values_are_named),
+        cmocka_unit_test(what_certainty_rests_on_is_no_class),
         cmocka_unit_test(two_files_may_not_share_a_name),
         cmocka_unit_test(absent_and_empty_folders_are_named),
     };

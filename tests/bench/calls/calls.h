@@ -7,6 +7,7 @@
 #ifndef BENCH_CALLS_H
 #define BENCH_CALLS_H
 
+#include "base/random.h"
 #include "call/catalogue.h"
 #include "flow.h"
 #include "scene/scene.h"
@@ -26,6 +27,7 @@ struct calls_setup {
 json_t *calls_pulses(const struct calls_setup *setup);
 json_t *calls_trains(const struct calls_setup *setup);
 json_t *calls_tones(const struct calls_setup *setup);
+json_t *calls_voices(const struct calls_setup *setup);
 json_t *calls_costs(const struct calls_setup *setup);
 /* One sea (calls_seas_count of them), and one confounder (calls_confounders_count) for `hours`. */
 json_t *calls_sea(const struct calls_setup *setup, uint32_t number);
@@ -33,6 +35,12 @@ json_t *calls_confounder(const struct calls_setup *setup, uint32_t number, doubl
 uint32_t calls_seas_count(void);
 uint32_t calls_confounders_count(void);
 const char *calls_confounder_name(uint32_t number);
+/* The lowest rate that carries it and what it could be taken for. */
+double calls_confounder_rate(uint32_t number);
+/* Adds it to a scene, with ranges and rhythms drawn. */
+void calls_confounder_fill(uint32_t number, struct scene *scene, struct random *random);
+/* A sea drawn by its number: rate, confounders (none to two), kinds of calls and their SNR. */
+json_t *calls_mixed(const struct calls_setup *setup, uint32_t number);
 
 /* The lowest usual sampling rate at which the class can be heard whole; 0 where none is. */
 double calls_lowest_rate(const struct call_class *call_class);

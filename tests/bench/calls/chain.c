@@ -46,7 +46,7 @@ static void keep_call(struct chain *chain, const struct event *event)
     if (!make_room(&calls, &chain->room, chain->n_calls, 1, sizeof *chain->calls))
         return;
     chain->calls = calls;
-    chain->calls[chain->n_calls++] =
+    chain->calls[chain->n_calls] =
         (struct chain_call){.class_index = class_named(chain->catalogue, call->class_name),
                             .n_pulses = call->n_pulses,
                             .n_sounds = call->n_sounds,
@@ -59,6 +59,7 @@ static void keep_call(struct chain *chain, const struct event *event)
                             .snr_db = call->snr_db,
                             .delay_s = time_to_s(event->known_ns - call->end_ns),
                             .certainty = call->certainty};
+    memcpy(chain->calls[chain->n_calls++].measures, call->measures, sizeof call->measures);
 }
 
 static void keep_impulse(struct chain *chain, const struct event *event)

@@ -22,6 +22,7 @@ struct chain_call {
     double start_s, end_s, low_hz, high_hz, snr_db;
     double delay_s; /* from its end to its entry */
     double certainty;
+    double measures[CALL_MEASURES];
 };
 
 /* A train with the arrivals of its pulses, in seconds: arrivals[first .. first + n_pulses). */

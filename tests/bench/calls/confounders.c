@@ -2,6 +2,7 @@
  * every contact. Each stretch of at most 20 min is a sea of its own, with ranges and rhythms drawn anew.
  * Levels and rhythms are of the order that is common practice (no source), those of shrimp as in scene. */
 #include "base/random.h"
+#include "bench/calls/match.h"
 #include "bench/calls/present.h"
 #include "scene/kind.h"
 #include "scene/render.h"
@@ -100,44 +101,46 @@ static void fill_shrimp(struct scene *scene, struct random *random)
 static const struct confounder {
     const char *name;
     double rate_hz;
-    const char *heard_as; /* class; "impulse"; NULL: none has it yet */
+    const char *heard_as; /* class or classes; "impulse"; NULL: none has it yet */
     void (*fill)(struct scene *scene, struct random *random);
     double near_m, far_m; /* of an emitter of that kind */
     uint32_t n_channels;  /* 0: 1 */
-} confounders[] = {{"the sea alone", 48000, NULL, fill_nothing, 0, 0, 0},
-                   {"hammer", 48000, "impulse", fill_hammer, 0, 0, 0},
-                   {"airguns", 48000, "impulse", fill_airguns, 0, 0, 0},
-                   {"ship's lines", 16000, "ship line", fill_ship, 0, 0, 0},
-                   {"echosounder 12 or 18 kHz", 48000, "echosounder", fill_echosounder_low, 0, 0, 0},
-                   {"echosounder 38 or 50 kHz", 128000, "echosounder", fill_echosounder_middle, 0, 0, 0},
-                   {"echosounder 120 kHz", 384000, "echosounder", fill_echosounder_high, 0, 0, 0},
-                   {"snapping shrimp", 384000, "snapping shrimp", fill_shrimp, 0, 0, 0},
-                   {"naval sonar", 48000, "sonar ping", NULL, 2000, 20000, 0},
-                   {"hopping modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"chirp modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"janus modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
-                   {"beacon", 96000, "beacon", NULL, 100, 2000, 0},
-                   {"net pinger", 48000, "net pinger", NULL, 50, 1000, 0},
-                   {"sweeping net pinger", 384000, "net pinger", NULL, 50, 1000, 0},
-                   {"deterrent", 384000, "deterrent device", NULL, 100, 2000, 0},
-                   {"charge", 48000, "charge", NULL, 500, 8000, 0},
-                   {"ship cavitation", 48000, "ship cavitation", NULL, 200, 3000, 0},
-                   {"rain", 96000, "rain", NULL, 0, 0, 0},
-                   {"flow noise", 8000, "flow noise", NULL, 0, 0, 2},
-                   {"thruster", 48000, "ship line", NULL, 100, 2000, 0},
-                   {"strum", 8000, "ship line", NULL, 0, 0, 0},
-                   {"mains pick-up", 8000, "electrical pick-up", NULL, 0, 0, 2},
-                   {"supply pick-up", 384000, "electrical pick-up", NULL, 0, 0, 2},
-                   {"fish hum", 8000, "fish hum", NULL, 3, 100, 0},
-                   {"fish grunts", 48000, "fish grunt", NULL, 3, 100, 0},
-                   {"fish knocks", 48000, NULL, NULL, 3, 100, 0},
-                   {"ice cracks", 48000, NULL, NULL, 200, 5000, 0},
-                   {"ice squeals", 16000, NULL, NULL, 200, 5000, 0}};
+} confounders[] = {
+    {"the sea alone", 48000, NULL, fill_nothing, 0, 0, 0},
+    {"hammer", 48000, "impulse", fill_hammer, 0, 0, 0},
+    {"airguns", 48000, "impulse", fill_airguns, 0, 0, 0},
+    {"ship's lines", 16000, "ship line", fill_ship, 0, 0, 0},
+    {"echosounder 12 or 18 kHz", 48000, "echosounder or beacon", fill_echosounder_low, 0, 0, 0},
+    {"echosounder 38 or 50 kHz", 128000, "echosounder ping", fill_echosounder_middle, 0, 0, 0},
+    {"echosounder 120 kHz", 384000, "echosounder ping", fill_echosounder_high, 0, 0, 0},
+    {"snapping shrimp", 384000, "snapping shrimp", fill_shrimp, 0, 0, 0},
+    {"naval sonar", 48000, "sonar ping", NULL, 2000, 20000, 0},
+    {"hopping modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"chirp modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"janus modem", 48000, "acoustic modem", NULL, 200, 4000, 0},
+    {"beacon", 96000, "beacon", NULL, 100, 2000, 0},
+    {"net pinger", 48000, "net pinger", NULL, 50, 1000, 0},
+    {"sweeping net pinger", 384000, "net pinger", NULL, 50, 1000, 0},
+    {"deterrent", 384000, "deterrent device", NULL, 100, 2000, 0},
+    {"charge", 48000, "charge", NULL, 500, 8000, 0},
+    {"ship cavitation", 48000, "ship cavitation", NULL, 200, 3000, 0},
+    {"rain", 96000, "rain", NULL, 0, 0, 0},
+    {"flow noise", 8000, "flow noise", NULL, 0, 0, 2},
+    {"thruster", 48000, "ship line", NULL, 100, 2000, 0},
+    {"strum", 8000, "ship line", NULL, 0, 0, 0},
+    {"mains pick-up", 8000, "electrical pick-up", NULL, 0, 0, 2},
+    {"supply pick-up", 384000, "electrical pick-up", NULL, 0, 0, 2},
+    {"fish hum", 8000, "fish hum", NULL, 3, 100, 0},
+    {"fish grunts", 48000, "fish grunt", NULL, 3, 100, 0},
+    {"fish knocks", 48000, NULL, NULL, 3, 100, 0},
+    {"ice cracks", 48000, NULL, NULL, 200, 5000, 0},
+    {"ice squeals", 16000, NULL, NULL, 200, 5000, 0}};
 
 /* Levels within 6 dB of the usual, and frequencies of what lasts (of its first setting) within a third of an
  * octave: no two seas alike. */
-static void fill(const struct confounder *confounder, struct scene *scene, struct random *random)
+void calls_confounder_fill(uint32_t number, struct scene *scene, struct random *random)
 {
+    const struct confounder *confounder = &confounders[number];
     if (confounder->fill) {
         confounder->fill(scene, random);
         return;
@@ -158,6 +161,11 @@ uint32_t calls_confounders_count(void)
     return sizeof confounders / sizeof confounders[0];
 }
 
+double calls_confounder_rate(uint32_t number)
+{
+    return confounders[number].rate_hz;
+}
+
 const char *calls_confounder_name(uint32_t number)
 {
     return confounders[number].name;
@@ -168,7 +176,7 @@ struct counts {
     uint32_t by_class[CATALOGUE_MAX_CLASSES];
     struct present_count recognised;
     bool lasts;
-    json_t *false_calls;
+    json_t *false_calls, *judged;
     double render_s, listen_s; /* of processor time */
 };
 
@@ -190,7 +198,7 @@ static void describe(const struct confounder *confounder, uint64_t seed, double 
     out->n_hydrophones = confounder->n_channels > 0 ? confounder->n_channels : 1;
     for (uint32_t i = 0; i < out->n_hydrophones; i++)
         out->hydrophones[i] = chain_hydrophone(i);
-    fill(confounder, out, &random);
+    calls_confounder_fill((uint32_t)(confounder - confounders), out, &random);
 }
 
 /* Since the last impulse that began before the call did; NAN: none. */
@@ -261,6 +269,9 @@ static bool run_stretch(const struct catalogue *catalogue, const struct confound
     chain_finish(&chain);
     bool good = count(confounder, &scene, &chain, counts);
     list_false(&chain, seed, counts->false_calls);
+    json_t *more = match_judged(&chain, NULL);
+    json_array_extend(counts->judged, more);
+    json_decref(more);
     render_destroy(render);
     chain_destroy(&chain);
     return good;
@@ -274,6 +285,7 @@ json_t *calls_confounder(const struct calls_setup *setup, uint32_t number, doubl
     json_t *calls = json_object();
     counts.false_calls =
         json_array(); /* seed of the sea, class, start, end, band, SNR, seconds since an impulse */
+    counts.judged = json_array();
     double done_s = 0;
     for (uint32_t i = 0; done_s < hours * 3600 - 1; i++) {
         double seconds = fmin(CALLS_STRETCH_S, hours * 3600 - done_s);
@@ -284,10 +296,11 @@ json_t *calls_confounder(const struct calls_setup *setup, uint32_t number, doubl
     for (uint32_t c = 0; c < catalogue->n_classes; c++)
         if (counts.by_class[c] > 0)
             json_object_set_new(calls, catalogue->classes[c].name, json_integer(counts.by_class[c]));
-    json_t *row = json_pack("{s:s, s:f, s:f, s:i, s:i, s:f, s:f, s:o, s:o}", "sound", confounder->name,
-                            "rate_hz", confounder->rate_hz, "hours", done_s / 3600, "looks",
-                            (int)counts.n_look, "acts", (int)counts.n_act, "render_s", counts.render_s,
-                            "listen_s", counts.listen_s, "calls", calls, "false", counts.false_calls);
+    json_t *row =
+        json_pack("{s:s, s:f, s:f, s:i, s:i, s:f, s:f, s:o, s:o, s:o}", "sound", confounder->name, "rate_hz",
+                  confounder->rate_hz, "hours", done_s / 3600, "looks", (int)counts.n_look, "acts",
+                  (int)counts.n_act, "render_s", counts.render_s, "listen_s", counts.listen_s, "calls", calls,
+                  "false", counts.false_calls, "judged", counts.judged);
     if (row && confounder->heard_as)
         json_object_set_new(row, "recognised",
                             json_pack("{s:s, s:b, s:f, s:f}", "as", confounder->heard_as, "lasts",

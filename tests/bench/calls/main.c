@@ -3,11 +3,13 @@
  * tests/bench/calls_table.py prints the table of all.
  *
  * usage: calls_bench OUT_FOLDER [PIECE] [SEED] [SCALE] [BUDGET_S]
- *   PIECE     pulses, trains, tones, seas, confounders, costs; "all" those without a result; "pool" goes on
- *             with confounders, 20 min of each in turn, until BUDGET_S have passed or 10 days are pooled
+ *   PIECE     pulses, trains, tones, voices, seas, confounders, costs, mixed; "all" those without a result; "sweep"
+ *             those of them that the plot shows; "pool" goes on with confounders, 20 min of each in turn,
+ *             until BUDGET_S have passed or 10 days are pooled
  *             the name of a confounder runs that for SCALE hours and prints what came of it
  *   SEED      0: the number of the day
- *   SCALE     of the lengths and numbers of trials: 1; more checks the single pulses' noise law too */
+ *   SCALE     of the lengths and numbers of trials: 1; more checks the single pulses' noise law too
+ */
 #include "bench/calls/calls.h"
 #include "float_mode.h"
 #include "support/catalogue.h"
@@ -117,11 +119,24 @@ static json_t *all_confounders(const struct calls_setup *setup)
     return json_pack("{s:o}", "rows", rows);
 }
 
+/* Seas of a few minutes each, all different. */
+static json_t *all_mixed(const struct calls_setup *setup)
+{
+    json_t *rows = json_array();
+    for (uint32_t i = 0; i < calls_trials(setup, 200, 1); i++)
+        if (json_array_append_new(rows, calls_mixed(setup, i)) != 0)
+            return NULL;
+    return json_pack("{s:o}", "rows", rows);
+}
+
 static const struct piece {
     const char *name;
     json_t *(*run)(const struct calls_setup *setup);
-} pieces[] = {{"pulses", calls_pulses}, {"trains", calls_trains},         {"tones", calls_tones},
-              {"seas", all_seas},       {"confounders", all_confounders}, {"costs", calls_costs}};
+    bool is_swept; /* over signal-to-noise ratio: part of the plot */
+} pieces[] = {{"pulses", calls_pulses, true}, {"trains", calls_trains, true},
+              {"tones", calls_tones, true},   {"voices", calls_voices, true},
+              {"seas", all_seas, false},      {"confounders", all_confounders, false},
+              {"costs", calls_costs, false},   {"mixed", all_mixed, false}};
 
 static double hours_of(const json_t *rows, const char *sound)
 {
@@ -193,14 +208,16 @@ static bool show(json_t *row)
 
 static bool run(const struct bench *bench, const char *name)
 {
-    bool all = strcmp(name, "all") == 0, good = true, known = all;
+    bool all = strcmp(name, "all") == 0, sweep = strcmp(name, "sweep") == 0, good = true;
+    bool known = all || sweep;
     if (strcmp(name, "pool") == 0)
         return pool(bench);
     for (size_t i = 0; i < sizeof pieces / sizeof pieces[0]; i++) {
         bool named = strcmp(name, pieces[i].name) == 0;
         known = known || named;
         double start_s = now_s();
-        if (named || (all && !has_result(bench, pieces[i].name)))
+        bool wanted = all || (sweep && pieces[i].is_swept);
+        if (named || (wanted && !has_result(bench, pieces[i].name)))
             good = finish(bench, pieces[i].name, start_s, pieces[i].run(&bench->setup)) && good;
     }
     for (uint32_t i = 0; !known && i < calls_confounders_count(); i++)

@@ -182,24 +182,21 @@ json_t *match_confusion(const struct match *match)
     return all;
 }
 
-json_t *match_calibration(const struct match *match)
+json_t *match_judged(const struct chain *chain, const bool *right)
 {
-    double sums[MATCH_BINS][4] = {{0}};
-    json_t *bins = json_array();
-    for (uint32_t c = 0; c < match->chain->n_calls; c++) {
-        const struct chain_call *call = &match->chain->calls[c];
-        if (!match->chain->catalogue->classes[call->class_index].animal)
+    json_t *all = json_array();
+    for (uint32_t c = 0; c < chain->n_calls; c++) {
+        const struct chain_call *call = &chain->calls[c];
+        const struct call_class *class = &chain->catalogue->classes[call->class_index];
+        if (!class->animal)
             continue; /* a machine's sound is no claim of an animal */
-        double p = call->certainty, right = match->of_group[c] ? 1 : 0;
-        double *sum = sums[(int)fmin(MATCH_BINS - 1, floor(MATCH_BINS * p))];
-        sum[0] += 1;
-        sum[1] += right;
-        sum[2] += p;
-        sum[3] += (p - right) * (p - right);
+        json_t *row = json_pack("[s, s, i, f]", class->name, class->form == CALL_TONE ? "tone" : "train",
+                                right && right[c], call->certainty);
+        for (uint32_t m = 0; m < CALL_MEASURES; m++)
+            json_array_append_new(row, calls_number(call->measures[m]));
+        json_array_append_new(all, row);
     }
-    for (int b = 0; b < MATCH_BINS; b++)
-        json_array_append_new(bins, calls_numbers(sums[b], 4));
-    return bins;
+    return all;
 }
 
 json_t *match_delays(const struct match *match)

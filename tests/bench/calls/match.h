@@ -5,8 +5,6 @@
 #include "bench/calls/chain.h"
 #include "bench/calls/voices.h"
 
-#define MATCH_BINS 5
-
 struct match {
     const struct voice *voices;
     uint32_t n_voices;
@@ -29,8 +27,9 @@ void match_free(struct match *match);
 json_t *match_rows(const struct match *match);
 /* What every class's calls truly were: class -> voice or "nothing" -> count. */
 json_t *match_confusion(const struct match *match);
-/* Five bins of stated certainty: count, right, sum of the certainty and of (certainty - right)2. */
-json_t *match_calibration(const struct match *match);
+/* Every call of an animal's class: [class, form, right group 1 or 0, certainty, measures...]. `right` NULL:
+ * none is. */
+json_t *match_judged(const struct chain *chain, const bool *right);
 /* A row a class: delays from the call's end to its entry. NULL without memory. */
 json_t *match_delays(const struct match *match);
 

@@ -113,14 +113,14 @@ static void account_for(struct present *present, double start_s, double end_s, u
     }
 }
 
-static bool is_of(const struct chain *chain, const struct chain_call *call, const char *class_name)
+static bool is_of(const struct chain *chain, const struct chain_call *call, const char *class_names)
 {
-    return strcmp(chain->catalogue->classes[call->class_index].name, class_name) == 0;
+    return strstr(class_names, chain->catalogue->classes[call->class_index].name) != NULL;
 }
 
 /* Seconds, in steps of one. */
 static struct present_count compare_lasting(const struct present *present, const struct chain *chain,
-                                            const char *class_name)
+                                            const char *class_names)
 {
     struct present_count count = {0, 0};
     double last_s = 0;
@@ -130,7 +130,7 @@ static struct present_count compare_lasting(const struct present *present, const
         bool covered = false;
         for (uint32_t i = 0; i < chain->n_calls && !covered; i++)
             covered = chain->calls[i].start_s <= t && chain->calls[i].end_s >= t &&
-                      is_of(chain, &chain->calls[i], class_name);
+                      is_of(chain, &chain->calls[i], class_names);
         count.present++;
         count.recognised += covered;
     }
@@ -138,18 +138,18 @@ static struct present_count compare_lasting(const struct present *present, const
 }
 
 struct present_count present_compare(struct present *present, const struct chain *chain,
-                                     const char *class_name)
+                                     const char *class_names)
 {
     struct present_count count = {0, 0};
     if (present->lasts)
-        return compare_lasting(present, chain, class_name);
+        return compare_lasting(present, chain, class_names);
     for (uint32_t i = 0; i < chain->n_calls; i++) {
         const struct chain_call *call = &chain->calls[i];
         uint32_t n = call->n_sounds > call->n_pulses ? call->n_sounds : call->n_pulses;
-        if (is_of(chain, call, class_name))
+        if (is_of(chain, call, class_names))
             account_for(present, call->start_s, call->end_s, n > 0 ? n : 1);
     }
-    for (uint32_t i = 0; strcmp(class_name, "impulse") == 0 && i < chain->n_impulses; i++)
+    for (uint32_t i = 0; strcmp(class_names, "impulse") == 0 && i < chain->n_impulses; i++)
         account_for(present, chain->impulses_s[i], chain->impulses_s[i], 1);
     for (uint32_t i = 0; i < present->n; i++) {
         count.present += present->sounds[i].plain;

@@ -28,10 +28,10 @@ struct present_count {
     double present, recognised;
 };
 
-/* Entries of the class of that name ("impulse": impulses as they were measured) against the sounds: an entry
- * of n sounds or pulses accounts for at most n that it meets within 0.1 s. Of what lasts: seconds, and those
- * that entries of the class cover. */
+/* Entries of the classes that are named, one or several ("impulse": impulses as they were measured) against
+ * the sounds: an entry of n sounds or pulses accounts for at most n that it meets within 0.1 s. Of what
+ * lasts: seconds, and those that entries of the class cover. */
 struct present_count present_compare(struct present *present, const struct chain *chain,
-                                     const char *class_name);
+                                     const char *class_names);
 
 #endif

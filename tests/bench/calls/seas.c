@@ -1,21 +1,14 @@
 /* Simulated seas: noise and all confounders that the rate carries, rendered by lib/scene, with calls of known
  * time, kind and signal-to-noise ratio added, through listen and watch. */
 #include "bench/calls/match.h"
+#include "bench/calls/sea.h"
 #include "scene/render.h"
 #include "support/ideal.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define MAX_VOICES 6
 #define QUIET_S 12.0 /* before the first call */
-
-struct sea {
-    const char *name;
-    double rate_hz, minutes, stretch_s;
-    void (*fill)(struct scene *scene);
-    struct voice voices[MAX_VOICES];
-};
 
 static void add_ship(struct scene *scene)
 {
@@ -145,9 +138,9 @@ static const struct sea seas[] = {
     {"low, 8 kHz",
      8000,
      60,
-     60,
+     240,
      fill_low,
-     {{"fin whale pulse", 10, 14, 6, 0, 1.0, 0, 0},
+     {{"fin whale pulse", 15, 60, 30, 8, 0, 15, 28},
       {"blue whale moan", 10, 20, 10, 0, 2.0, 0, 0},
       UPCALLS,
       HUMPBACK}},
@@ -167,13 +160,13 @@ struct sailing {
     struct stretch stretch;
     uint32_t n_voices, n_truths, room;
     struct truth_call *truths;
-    double next_s[MAX_VOICES];
-    struct emission next[MAX_VOICES];
+    double next_s[SEA_MAX_VOICES];
+    struct emission next[SEA_MAX_VOICES];
 };
 
-static bool sailing_create(struct sailing *sailing, const struct calls_setup *setup, uint32_t number)
+static bool sailing_create(struct sailing *sailing, const struct calls_setup *setup, const struct sea *sea,
+                           uint64_t number)
 {
-    const struct sea *sea = &seas[number];
     struct scene *scene = &sailing->scene;
     sailing->sea = sea;
     scene_reset(scene);
@@ -188,7 +181,7 @@ static bool sailing_create(struct sailing *sailing, const struct calls_setup *se
     sailing->stretch.rate_hz = sea->rate_hz;
     sailing->stretch.n = (uint32_t)(sea->stretch_s * sea->rate_hz);
     sailing->stretch.samples = calloc(sailing->stretch.n, sizeof(float));
-    while (sailing->n_voices < MAX_VOICES && sea->voices[sailing->n_voices].mean_gap_s > 0)
+    while (sailing->n_voices < SEA_MAX_VOICES && sea->voices[sailing->n_voices].mean_gap_s > 0)
         sailing->n_voices++;
     for (uint32_t v = 0; v < sailing->n_voices; v++) {
         sailing->next_s[v] = QUIET_S + random_between(&sailing->random, 0, 5);
@@ -251,8 +244,8 @@ static bool add_calls(struct sailing *sailing, uint32_t v, const float *medians,
 /* What the sea holds is measured before any call is added. */
 static bool fill_stretch(struct sailing *sailing)
 {
-    float *medians[MAX_VOICES] = {NULL};
-    double deviations[MAX_VOICES];
+    float *medians[SEA_MAX_VOICES] = {NULL};
+    double deviations[SEA_MAX_VOICES];
     struct stretch *stretch = &sailing->stretch;
     bool good = true;
     render_get(sailing->render, (uint64_t)(stretch->start_s * stretch->rate_hz), stretch->samples,
@@ -346,20 +339,20 @@ static json_t *judge(struct sailing *sailing)
             sailing->sea->voices[0].window_s > 0 ? json_null() : discriminability(sailing, &match);
         out = json_pack("{s:s, s:f, s:f, s:o, s:o, s:o, s:o, s:o, s:o}", "sea", sailing->sea->name, "rate_hz",
                         sailing->scene.rate_hz, "minutes", sailing->scene.duration_s / 60, "voices",
-                        match_rows(&match), "confusion", match_confusion(&match), "calibration",
-                        match_calibration(&match), "delays", match_delays(&match), "first_voice", first,
-                        "rejections", rejections(&sailing->chain));
+                        match_rows(&match), "confusion", match_confusion(&match), "delays",
+                        match_delays(&match), "first_voice", first, "rejections", rejections(&sailing->chain),
+                        "judged", match_judged(&sailing->chain, match.of_group));
     }
     match_free(&match);
     return out;
 }
 
-json_t *calls_sea(const struct calls_setup *setup, uint32_t number)
+json_t *sea_sail(const struct calls_setup *setup, const struct sea *sea, uint64_t number)
 {
     struct sailing *sailing = calloc(1, sizeof *sailing);
     if (!sailing)
         return NULL;
-    bool good = sailing_create(sailing, setup, number);
+    bool good = sailing_create(sailing, setup, sea, number);
     for (double at_s = 0; good && at_s < sailing->scene.duration_s; at_s += sailing->sea->stretch_s) {
         sailing->stretch.start_s = at_s;
         good = fill_stretch(sailing);
@@ -373,4 +366,9 @@ json_t *calls_sea(const struct calls_setup *setup, uint32_t number)
     }
     sailing_destroy(sailing);
     return out;
+}
+
+json_t *calls_sea(const struct calls_setup *setup, uint32_t number)
+{
+    return sea_sail(setup, &seas[number], number);
 }

@@ -11,8 +11,8 @@
 #include <string.h>
 
 #define N_LEVELS 8
-#define STEP_DB 1.0
-#define FIRST_DB (-5.0) /* of the single-pulse ideal's 2E/N0 */
+#define STEP_DB 0.5
+#define FIRST_DB (-3.5) /* of the single-pulse ideal's 2E/N0 */
 #define N_PULSES 8
 #define JITTER 0.04
 
@@ -86,8 +86,8 @@ static json_t *measure(const struct calls_setup *setup, const struct call_class 
     double w_hz = call_class.high_hz - call_class.low_hz;
     double ideal_db = units_power_db(ideal_energy_lambda(w_hz, call_class.train.pulse_s, 1, 0.9));
     /* Slow classes cost minutes of sound a trial. */
-    double sound_s = (double)trial.n_frames / trial.rate_hz * trial.rate_hz / 48000;
-    uint32_t n = calls_trials(setup, sound_s > 20 ? 60 : 100, 10);
+    double sound_s = (double)trial.n_frames / 48000;
+    uint32_t n = calls_trials(setup, sound_s > 20 ? 100 : 200, 10);
     double levels[N_LEVELS], pd[N_LEVELS], *delays = calloc((size_t)n * N_LEVELS, sizeof(double));
     uint32_t n_delays = 0;
     for (int i = 0; delays && i < N_LEVELS; i++) {

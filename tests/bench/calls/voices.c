@@ -67,6 +67,19 @@ double stretch_deviation(const struct stretch *stretch, double low_hz, double hi
     return deviation;
 }
 
+/* A song of single calls, as many as the voice says, at the intervals of their kind: a train. */
+static void make_series(const struct voice *voice, const struct kind_order *order, struct random *random,
+                        struct emission *out)
+{
+    if (out->n_pulses > 0 || voice->pulses == 0)
+        return;
+    const struct scene_kind *kind = scene_kind_find(voice->kind);
+    out->n_pulses = voice->pulses;
+    out->pulse_s[0] = 0;
+    for (uint32_t i = 1; i < out->n_pulses; i++)
+        out->pulse_s[i] = out->pulse_s[i - 1] + kind->spacing_s(order, out->sound.length_s, random);
+}
+
 void voice_draw(const struct voice *voice, double rate_hz, struct random *random, struct emission *out)
 {
     struct scene_emitter animal = scene_emitter_of(voice->kind);
@@ -78,6 +91,7 @@ void voice_draw(const struct voice *voice, double rate_hz, struct random *random
                                .unit = (uint32_t)(random_bits(random) % 8)};
     memset(out, 0, sizeof *out);
     kind_make(&order, random, out);
+    make_series(voice, &order, random, out);
     for (uint32_t i = 0; i < out->n_pulses; i++)
         out->pulse_gain[i] = (float)units_amplitude_ratio(LEVEL_SPREAD_DB * random_normal(random));
 }

@@ -15,7 +15,7 @@ struct voice {
                           lg(envelope's peak / standard deviation of the noise in the band) */
     double mean_gap_s; /* exponential, from one call's end to the next's start */
     double least_gap_s;
-    uint32_t pulses;        /* of a train */
+    uint32_t pulses;        /* of a train, or of a song of single calls */
     double window_s;        /* tone: of the spectrum in which the SNR is meant */
     double low_hz, high_hz; /* pulse: the band in which it is meant */
 };
