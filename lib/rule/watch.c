@@ -145,7 +145,7 @@ static void pass_time(struct watch *watch, int64_t to_ns)
     for (int64_t due; (due = next_due_ns(watch)) <= to_ns;) {
         effort_accrue(watch, due);
         watch->now_ns = due;
-        why_reset(&watch->recent, "", "%s", "");
+        why_set(&watch->recent, "", "");
         settle(watch);
     }
     effort_accrue(watch, to_ns);
@@ -176,7 +176,7 @@ static void set_recent(struct watch *watch, const struct event *event)
 {
     char id[FLOW_ID_SIZE];
     flow_id(event->run, event->stream, flow_event_kind_text(event->kind), event->counter, id);
-    why_reset(&watch->recent, "", "%s", "");
+    why_set(&watch->recent, "", "");
     why_add_cause(&watch->recent, id);
 }
 

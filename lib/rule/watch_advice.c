@@ -103,7 +103,7 @@ static void ground(struct wanted *wanted, const struct watch *watch, enum advice
 {
     wanted->key.word = word;
     wanted->key.ground = why_so;
-    why_reset(&wanted->why, clause, "%.250s", text);
+    why_set(&wanted->why, clause, text);
     why_add_cause(&wanted->why, watch->phase_id);
 }
 
@@ -256,7 +256,11 @@ static void want_not_ready(const struct watch *watch, struct wanted *wanted)
 
 static void want(const struct watch *watch, enum station station, struct wanted *wanted)
 {
-    *wanted = (struct wanted){.until_ns = -1};
+    wanted->key =
+        (struct advice_key){0}; /* the rest of the texts is left as it is: this runs at every event */
+    why_set(&wanted->why, "", "");
+    wanted->until_ns = -1;
+    wanted->needs[0] = '\0';
     const struct contact *lead = contact_lead(watch, station == STATION_CREW);
     if (source_sounds(watch->phase)) {
         want_while_sounding(watch, lead, wanted);
@@ -279,18 +283,24 @@ static struct watch_advice *in_force(struct watch *watch, enum station station)
     return NULL;
 }
 
-static void fill(const struct watch *watch, enum station station, const struct wanted *wanted,
-                 struct advice_outcome *advice)
+/* What changes while the advice stays the same. */
+static void refresh(const struct watch *watch, const struct wanted *wanted, struct advice_outcome *advice)
 {
-    *advice = (struct advice_outcome){
-        .advice = wanted->key.word, .until_ns = wanted->until_ns, .n_causes = wanted->why.n_causes};
+    advice->until_ns = wanted->until_ns;
     /* Only what a contact asks for waits for somebody's word. */
     advice->confirmed = wanted->key.ground != GROUND_CONTACT || wanted->key.confirmed;
-    snprintf(advice->station, sizeof advice->station, "%s", station_names[station]);
     memcpy(advice->reason, wanted->why.text, sizeof advice->reason);
     memcpy(advice->clause, wanted->why.clause, sizeof advice->clause);
     memcpy(advice->job, watch->source.job, sizeof advice->job);
     memcpy(advice->requires, wanted->needs, sizeof advice->requires);
+}
+
+static void fill(const struct watch *watch, enum station station, const struct wanted *wanted,
+                 struct advice_outcome *advice)
+{
+    *advice = (struct advice_outcome){.advice = wanted->key.word, .n_causes = wanted->why.n_causes};
+    snprintf(advice->station, sizeof advice->station, "%s", station_names[station]);
+    refresh(watch, wanted, advice);
     memcpy(advice->causes, wanted->why.causes, sizeof advice->causes);
 }
 
@@ -323,17 +333,13 @@ static void settle_station(struct watch *watch, enum station station)
     bool same = present && key->word == wanted.key.word && key->ground == wanted.key.ground &&
                 key->contact == wanted.key.contact && key->condition == wanted.key.condition &&
                 key->confirmed == wanted.key.confirmed;
-    if (!same) {
-        add_end(watch, key, &wanted);
-        why_add_cause(&wanted.why, watch->recent.causes[0]);
-    }
-    fill(watch, station, &wanted, &advice);
     if (same) { /* people see the newest figures; the situation is the same, and so is the advice */
-        memcpy(advice.causes, present->advice.causes, sizeof advice.causes);
-        advice.n_causes = present->advice.n_causes;
-        present->advice = advice;
+        refresh(watch, &wanted, &present->advice);
         return;
     }
+    add_end(watch, key, &wanted);
+    why_add_cause(&wanted.why, watch->recent.causes[0]);
+    fill(watch, station, &wanted, &advice);
     *key = wanted.key;
     watch_say_advice(watch, &advice);
 }

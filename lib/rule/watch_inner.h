@@ -269,6 +269,8 @@ struct watch {
 /* watch_say.c: outcomes, their counters and ids */
 void why_reset(struct why *why, const char *clause, const char *format, ...)
     __attribute__((format(printf, 3, 4)));
+/* The same with a text as it is. */
+void why_set(struct why *why, const char *clause, const char *text);
 /* Empty ids and ids that are there already are left out, as are those beyond the room. */
 void why_add_cause(struct why *why, const char *id);
 void why_add_contact(struct why *why, const struct contact *contact);

@@ -26,6 +26,14 @@ void why_reset(struct why *why, const char *clause, const char *format, ...)
     copy_text(why->clause, sizeof why->clause, clause);
 }
 
+void why_set(struct why *why, const char *clause, const char *text)
+{
+    why->n_causes = 0;
+    why->causes[0][0] = '\0';
+    copy_text(why->text, sizeof why->text, text);
+    copy_text(why->clause, sizeof why->clause, clause);
+}
+
 void why_add_cause(struct why *why, const char *id)
 {
     if (!*id || why->n_causes == FLOW_MAX_CAUSES)
@@ -60,12 +68,13 @@ static void give(struct watch *watch, const struct outcome *outcome, char id[FLO
 
 void watch_say_event(struct watch *watch, const struct event *event)
 {
-    struct outcome outcome = {.kind = OUTCOME_EVENT,
-                              .run = event->run,
-                              .stream = event->stream,
-                              .counter = event->counter,
-                              .watch_ns = watch->now_ns,
-                              .as.event = *event};
+    struct outcome outcome; /* what an event does not fill is not touched: there is one for each */
+    outcome.kind = OUTCOME_EVENT;
+    outcome.run = event->run;
+    outcome.stream = event->stream;
+    outcome.counter = event->counter;
+    outcome.watch_ns = watch->now_ns;
+    outcome.as.event = *event;
     watch->sink->take(watch->sink->context, &outcome);
 }
 
