@@ -4,6 +4,7 @@ import {
   $, Alarm, adviceFor, adviceWords, answerOf, clock, connect, el, faults, keyed, link, loadPermit, local, plainWords, post, remains,
   remember, remembered, sentence, setShape, setText, span, startPalette, startSound, untilLeft, untilTitle, utc, watchNow,
 } from "/page.js";
+import { CREW_SENTENCES } from "/words.js";
 
 const station = new URLSearchParams(location.search).get("station") || "crew";
 const AGAIN_S = 20; // sounds again within 30 s until acknowledged (IMO MSC.302(87) 7.3.5)
@@ -38,9 +39,11 @@ function showMessage(advice, withdrawn, waiting) {
   setText($("marker"), words.marker);
   setText($("words"), words.words + ".");
   let plain = advice ? plainWords(advice.advice, permit && permit.permit.activity) : "";
-  if (withdrawn) plain = "‘" + adviceWords(advice.advice).words[0] + adviceWords(advice.advice).words.slice(1).toLowerCase() + "’ is withdrawn. Ask the observer by voice.";
-  else if (waiting) plain = "The page waits for the daemon.";
-  else if (!advice) plain = "The observer has given no instruction.";
+  const said = advice ? adviceWords(advice.advice).words : "";
+  if (withdrawn) plain = CREW_SENTENCES.withdrawn.replace("{words}", said[0] + said.slice(1).toLowerCase());
+  else if (waiting) plain = CREW_SENTENCES.waits;
+  else if (!advice) plain = CREW_SENTENCES.none;
+  else if (advice.advice === "hold power" && advice.reason.startsWith("stop if possible")) plain = CREW_SENTENCES.orHold;
   setText($("plain"), plain);
   tags(withdrawn ? null : advice);
   document.title = words.words + " – " + station;

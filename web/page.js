@@ -1,6 +1,8 @@
 // What both pages share: the link to the daemon, times, words, faults, palettes, sound and notes.
 // Every text from outside goes through textContent; nothing here builds markup from strings.
 
+import { CREW_WORDS, PLAIN_WORDS, UNTIL_WORDS } from "/words.js";
+
 export const LATE_MS = 2500; // a heartbeat, the watch or the ledger that stands still is said within 3 s
 
 export const $ = (id) => document.getElementById(id);
@@ -45,45 +47,31 @@ export function keyed(parent, items, key, create, update) {
   for (const node of old.values()) node.remove();
 }
 
-// ---- what we may say, and how: message markers and plain words after the IMO's Standard Marine Communication
-// Phrases; `level` chooses colour and shape, `alert` whether people must answer.
-const ADVICE = {
-  "stop": { marker: "INSTRUCTION", words: "STOP", level: "stop", shape: "octagon", alert: true },
-  "reduce power": { marker: "INSTRUCTION", words: "REDUCE POWER", level: "hold", shape: "down", alert: true },
-  "hold power": { marker: "INSTRUCTION", words: "HOLD POWER", level: "hold", shape: "bars", alert: true },
-  "prepare to stop": { marker: "WARNING", words: "PREPARE TO STOP", level: "hold", shape: "triangle", alert: true },
-  "do not start": { marker: "INSTRUCTION", words: "DO NOT START", level: "hold", shape: "barred", alert: true },
-  "new soft start": { marker: "INSTRUCTION", words: "NEW SOFT START", level: "go", shape: "stairs", alert: true },
-  "resume": { marker: "ADVICE", words: "RESUME", level: "go", shape: "right", alert: true, withdrawable: true },
-  "may start": { marker: "ADVICE", words: "YOU MAY START", level: "go", shape: "right", alert: true, withdrawable: true },
-  "carry on": { marker: "INFORMATION", words: "CARRY ON", level: "calm", shape: "ring", withdrawable: true },
+// ---- how an advice looks: `level` chooses colour and shape, `alert` whether people must answer. Its words are in
+// words.js.
+const LOOK = {
+  "stop": { level: "stop", shape: "octagon", alert: true },
+  "reduce power": { level: "hold", shape: "down", alert: true },
+  "hold power": { level: "hold", shape: "bars", alert: true },
+  "prepare to stop": { level: "hold", shape: "triangle", alert: true },
+  "do not start": { level: "hold", shape: "barred", alert: true },
+  "new soft start": { level: "go", shape: "stairs", alert: true, withdrawable: true },
+  "resume": { level: "go", shape: "right", alert: true, withdrawable: true },
+  "may start": { level: "go", shape: "right", alert: true, withdrawable: true },
+  "carry on": { level: "calm", shape: "ring", withdrawable: true },
+  "": { level: "calm", shape: "ring" },
 };
-const PLAIN = {
-  piling: { "stop": "Stop piling now.", "do not start": "Do not start piling." },
-  airguns: { "stop": "Stop the airguns now.", "do not start": "Do not fire the airguns." },
-  explosives: { "stop": "Do not fire. Make safe.", "do not start": "Do not fire." },
-  any: {
-    "stop": "Stop the source now.", "do not start": "Do not start the source.", "hold power": "Do not increase power.",
-    "reduce power": "Reduce power now.", "prepare to stop": "Be ready to stop at once.", "may start": "Begin with a soft start.",
-    "resume": "You may go on.", "new soft start": "Begin again with a soft start.", "carry on": "Nothing holds the work back.",
-  },
-};
-const NONE = { marker: "INFORMATION", words: "NO ADVICE", level: "calm", shape: "ring" };
-
 export function adviceWords(word) {
-  return ADVICE[word] || NONE;
+  const known = word in LOOK ? word : "";
+  return { ...LOOK[known], ...CREW_WORDS[known] };
 }
 export function plainWords(word, activity) {
-  return (PLAIN[activity] || {})[word] || PLAIN.any[word] || "";
+  return (PLAIN_WORDS[activity] || {})[word] || PLAIN_WORDS.any[word] || "";
 }
 
 /** What the time beside an advice means; nothing where there is none to wait for. */
-const UNTIL = {
-  "do not start": "Earliest start", "may start": "Start", "stop": "Earliest restart", "new soft start": "Earliest restart",
-  "resume": "Resume before", "hold power": "Earliest end", "reduce power": "Earliest end", "prepare to stop": "Earliest end",
-};
 export function untilTitle(word) {
-  return UNTIL[word] || "";
+  return UNTIL_WORDS[word] || "";
 }
 /** "in 4:10", "now, if all else is met"; of a time to resume by "4:10 left". */
 export function untilLeft(word, left) {
@@ -231,7 +219,7 @@ export function faults() {
 }
 /** "STOP REMAINS", or nothing where no instruction stays in force. */
 export function remains(word) {
-  const words = ADVICE[word];
+  const words = word in LOOK ? adviceWords(word) : null;
   return words && !words.withdrawable ? words.words + " REMAINS" : "";
 }
 
