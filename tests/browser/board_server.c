@@ -148,6 +148,7 @@ static void set_phase(struct server *server, enum phase phase, const char *reaso
     snprintf(view->phase_clause, FLOW_TEXT_SIZE, "%s", clause);
     snprintf(view->job, IMPULSE_JOB_SIZE, "pile A07");
     view->n_timers = 0;
+    view->plan = (struct watch_plan){.planned_ns = -1, .earliest_ns = -1};
     view->release_possible = false;
     view->source_heard = phase == PHASE_SOFT_START || phase == PHASE_FULL_POWER;
     view->source_said = view->source_heard ? phase : PHASE_OFF;
@@ -162,6 +163,31 @@ static void show_contacts(struct server *server)
     add_contact(server, 2, GROUP_DELPHINID, GRADE_LOOK, 0, 0);
     struct watch_contact *porpoise = add_contact(server, 3, GROUP_PORPOISE, GRADE_ACT, 0, 0);
     porpoise->countdown_ends_ns = server->watch.watch_ns + time_from_s(30);
+}
+
+static void add_step(struct watch_plan *plan, const char *name, int64_t latest_ns, const char *text)
+{
+    struct watch_plan_step *step = &plan->steps[plan->n_steps++];
+    step->earliest_ns = -1;
+    step->latest_ns = latest_ns;
+    snprintf(step->name, sizeof step->name, "%s", name);
+    snprintf(step->text, sizeof step->text, "%s", text);
+}
+
+/* A start in 10 min that a delay of 20 min pushes back. */
+static void show_plan(struct server *server)
+{
+    struct watch_plan *plan = &server->watch.plan;
+    int64_t now_ns = server->watch.watch_ns;
+    *plan = (struct watch_plan){.planned_ns = now_ns + time_from_s(600),
+                                .earliest_ns = now_ns + time_from_s(1200),
+                                .slips_ns = time_from_s(600)};
+    add_step(plan, "pre-watch begins", now_ns + time_from_s(600), "0 min are left of 3");
+    plan->steps[0].done = true;
+    add_step(plan, "deterrent on", now_ns - time_from_s(300), "for at least 15 min");
+    plan->steps[1].late = true;
+    add_step(plan, "day ends", now_ns + time_from_s(7200), "");
+    plan->steps[2].fact = true;
 }
 
 static const char *held(void)
@@ -212,6 +238,7 @@ static bool show_grave(struct server *server, const char *word)
         set_phase(server, PHASE_DELAY, "a porpoise is heard, distance unknown", "clause 4.1");
         show_contacts(server);
         add_timer(server, "pre-watch", 180, 180, "");
+        show_plan(server);
         add_timer(server, "clearance of contact 1", 212, 1200, "");
         add_timer(server, "clearance of contact 3", 0, 1200, "contact 3 is still heard");
         both(server, ADVICE_DO_NOT_START, "Baleen whale heard at about 640 m, likely inside the watch zone",

@@ -63,6 +63,9 @@ def observer_shows(server, observer):
     check(painted == 3, "three strips of sound are painted", painted)
     check("1.2" in observer.text("#levels") and "rel." in observer.text("#levels"), "levels of an uncalibrated channel are marked relative")
     check("3 of 4 values are unverified" in observer.text("#permit_values"), "the permit's unverified values are counted")
+    plan = observer.text("#plan")
+    check("It slips by 10:00" in plan and "done or under way" in plan and "TOO LATE" in plan and "day ends at" in plan,
+          "the plan says what it needs by when, and what a delay costs", plan)
     told = observer.text("#not_by_ear")
     check("not by ear: phocid." in told and "Visual only, no call of theirs is proof: sperm whale, beaked whale, delphinid, otariid," in told
           and "Of porpoise only the porpoise click train." in told, "it says of which groups silence means nothing", told)
