@@ -416,7 +416,7 @@ static void end_slow(struct lines *lines, uint64_t end, const struct found_sink 
     }
     if (lines->setup.pair)
         agree(found, n, means->bin_hz);
-    double late = lines_get_late(lines);
+    double late = decimator_get_delay(lines->decimators[0]) * lines->sums;
     tell_lines(lines, means, found, n, (double)end - late, end - 1, sink);
     look_for_flow(lines, (double)end - late, end - 1, sink);
     clear(lines, means, end);
@@ -487,14 +487,10 @@ void lines_push(struct lines *lines, const struct other_frame *frame, const floa
         end_slow(lines, end, sink);
 }
 
-double lines_get_slow_rate(const struct lines *lines)
+void lines_describe_slow(const struct lines *lines, double *rate_hz, double *late_frames)
 {
-    return lines->slow_rate_hz;
-}
-
-double lines_get_late(const struct lines *lines)
-{
-    return decimator_get_delay(lines->decimators[0]) * lines->sums;
+    *rate_hz = lines->slow_rate_hz;
+    *late_frames = decimator_get_delay(lines->decimators[0]) * lines->sums;
 }
 
 uint32_t lines_get_slow(const struct lines *lines, const float **out)

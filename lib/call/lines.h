@@ -23,10 +23,9 @@ void lines_reset(struct lines *lines, uint64_t next_frame);
 void lines_push(struct lines *lines, const struct other_frame *frame, const float *second,
                 const struct found_sink *sink);
 void lines_destroy(struct lines *lines);
-/* The decimated copy of the first channel: its rate, how late it is in frames of the stream, and the samples
+/* The decimated copy of the first channel: its rate, and how late it is in frames of the stream; the samples
  * that the newest frame gave, borrowed until the next. */
-double lines_get_slow_rate(const struct lines *lines);
-double lines_get_late(const struct lines *lines);
+void lines_describe_slow(const struct lines *lines, double *rate_hz, double *late_frames);
 uint32_t lines_get_slow(const struct lines *lines, const float **out);
 
 /* ---- for its own files only */

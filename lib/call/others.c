@@ -39,9 +39,11 @@ static enum status fill(struct others *others)
         status = lines_create(setup, &others->lines);
     if (status == STATUS_OK)
         status = swells_create(setup, &others->swells);
-    if (status == STATUS_OK)
-        status = grunts_create(setup, lines_get_slow_rate(others->lines), lines_get_late(others->lines),
-                               &others->grunts);
+    double slow_hz = 0, late_frames = 0;
+    if (status == STATUS_OK) {
+        lines_describe_slow(others->lines, &slow_hz, &late_frames);
+        status = grunts_create(setup, slow_hz, late_frames, &others->grunts);
+    }
     return status;
 }
 

@@ -213,8 +213,8 @@ static float sum_of(const float *power, uint32_t first, uint32_t end)
     return (float)sum;
 }
 
-/* A hump is broad, a line stands in one part of it: the loudest quarter counts at most half as much again as
- * the others do. */
+/* A hump is broad, a line stands in one part of it: the loudest quarter counts at most twice as
+ * much as one of the others. */
 static float sum_of_hump(const float *power, uint32_t first, uint32_t end)
 {
     float all = 0, loudest = 0;
@@ -224,7 +224,7 @@ static float sum_of_hump(const float *power, uint32_t first, uint32_t end)
         loudest = part > loudest ? part : loudest;
     }
     float others = all - loudest;
-    return others + fminf(loudest, others / 2);
+    return others + fminf(loudest, others * (2.0F / 3));
 }
 
 static bool is_snap(const struct other_frame *frame)

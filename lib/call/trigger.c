@@ -110,7 +110,7 @@ static void give_held(struct trigger *trigger, const struct pulse_sink *sink)
 {
     enum { OPEN, GIVEN, ECHO } fate[HELD] = {OPEN};
     uint32_t n = trigger->n_held;
-    bool all = false;
+    double all_from = INFINITY; /* frame: nothing sounds before its cause */
     for (uint32_t i = 0; i < n; i++)
         if (n > 1 || !(trigger->held[i].broadband || trigger->held[i].too_long))
             look_at(trigger, i);
@@ -122,8 +122,10 @@ static void give_held(struct trigger *trigger, const struct pulse_sink *sink)
         if (best == HELD)
             break;
         const struct search_found *found = &trigger->held[best];
-        fate[best] = all || found->broadband || found->too_long ? ECHO : GIVEN;
-        all = all || (n > 1 && ties_all(trigger, best));
+        bool good = !found->broadband && !found->too_long && found->frame <= all_from;
+        fate[best] = good ? GIVEN : ECHO;
+        if (n > 1 && ties_all(trigger, best))
+            all_from = fmin(all_from, found->frame);
         for (uint32_t i = 0; i < n; i++)
             if (fate[i] == OPEN && is_echo_of(trigger, i, best))
                 fate[i] = ECHO;
