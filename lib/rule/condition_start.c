@@ -109,6 +109,14 @@ static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
     return true;
 }
 
+void start_end_stretch(struct watch *watch)
+{
+    struct start_state *state = &watch->start;
+    if (state->good_since_ns >= 0)
+        spans_add(&state->good, state->good_since_ns, watch->now_ns);
+    state->good_since_ns = -1;
+}
+
 /* A stretch of watch by day in good conditions goes on, or ends. */
 static void settle(struct watch *watch)
 {
@@ -117,13 +125,11 @@ static void settle(struct watch *watch)
     int64_t until_ns;
     bool good = watch->permit->start.stated && watch->permit->start.good_watch_minutes > 0 &&
                 effort_kept_as(watch, "visual") && surroundings_light(&watch->surroundings) == LIGHT_DAY &&
-                !sees_poorly(watch, poor, &until_ns) && !watch->effort.outage;
+                !sees_poorly(watch, poor, &until_ns);
     if (good && state->good_since_ns < 0)
         state->good_since_ns = watch->now_ns;
-    if (!good && state->good_since_ns >= 0) {
-        spans_add(&state->good, state->good_since_ns, watch->now_ns);
-        state->good_since_ns = -1;
-    }
+    if (!good)
+        start_end_stretch(watch);
 }
 
 static int64_t due_ns(const struct watch *watch)
