@@ -187,7 +187,8 @@ static bool want_for_contact(const struct watch *watch, const struct contact *le
 static void want_in_break(const struct watch *watch, const struct contact *lead, struct wanted *wanted)
 {
     char text[FLOW_TEXT_SIZE];
-    const struct contact *question = lead ? lead : contact_lead(watch, false);
+    bool holds = lead && contact_wanted(watch, lead) >= ACTION_DELAY;
+    const struct contact *question = holds ? lead : contact_lead(watch, false);
     if (want_for_contact(watch, question, false, wanted) || is_blind(watch, wanted, ADVICE_DO_NOT_START)) {
         need_start(watch, wanted);
         return;
