@@ -30,7 +30,7 @@ LIB_SOURCES = $(wildcard lib/*.c lib/*/*.c)
 DAEMON_SOURCES = $(filter-out $(MAINS),$(wildcard daemon/*.c daemon/*/*.c))
 LIB_OBJECTS = $(LIB_SOURCES:%.c=$(BUILD)/%.o)
 DAEMON_OBJECTS = $(DAEMON_SOURCES:%.c=$(BUILD)/%.o) $(BUILD)/generated/web.o
-SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c tests/support/block_%.c,$(wildcard tests/support/*.c)) \
+SUPPORT_OBJECTS = $(patsubst %.c,$(BUILD)/%.o,$(filter-out tests/support/pcm_%.c tests/support/block_%.c tests/support/watch_facts.c,$(wildcard tests/support/*.c)) \
 	$(filter-out tests/bench/calls/main.c,$(wildcard tests/bench/calls/*.c)))
 WEB_FILES = $(wildcard web/*)
 
@@ -93,7 +93,7 @@ $(BUILD)/libasound_module_pcm_feed.so: tests/support/pcm_feed.c
 	@mkdir -p $(@D)
 	gcc -O2 -std=gnu11 -shared -fPIC -DPIC $< -o $@ -lasound
 
-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BUILD)/tests/browser/board_server $(BUILD)/libasound_module_pcm_feed.so
+tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BUILD)/tests/browser/board_server $(BUILD)/tests/support/watch_facts $(BUILD)/libasound_module_pcm_feed.so
 check: install-test-needs
 	@$(MAKE) --no-print-directory -j2 tests
 	@/usr/bin/python3 tests/support/run.py --build $(BUILD) $(ONLY)

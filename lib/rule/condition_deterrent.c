@@ -94,11 +94,14 @@ static void take_note(struct watch *watch, const struct note *note)
         deterrent->off_ns = watch->now_ns;
 }
 
-/* What worked before one start does not stand for the next. */
+/* What worked before one start does not stand for the next; a break that is short enough needs none. */
 static void enter_phase(struct watch *watch, enum phase from, enum phase to)
 {
-    if (source_sounds(from) && !source_sounds(to) && to != PHASE_BREAK && watch->deterrent.off_ns >= 0)
-        watch->deterrent.on_ns = -1;
+    struct deterrent *deterrent = &watch->deterrent;
+    bool worked_out = source_sounds(from) || from == PHASE_BREAK;
+    if (worked_out && !source_sounds(to) && to != PHASE_BREAK && deterrent->off_ns >= 0 &&
+        deterrent->off_ns <= watch->source.quiet_ns)
+        deterrent->on_ns = -1;
 }
 
 static void settle(struct watch *watch)

@@ -109,6 +109,14 @@ static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
     return true;
 }
 
+void start_end_stretch(struct watch *watch)
+{
+    struct start_state *state = &watch->start;
+    if (state->good_since_ns >= 0)
+        spans_add(&state->good, state->good_since_ns, watch->now_ns);
+    state->good_since_ns = -1;
+}
+
 /* A stretch of watch by day in good conditions goes on, or ends. */
 static void settle(struct watch *watch)
 {
@@ -117,13 +125,36 @@ static void settle(struct watch *watch)
     int64_t until_ns;
     bool good = watch->permit->start.stated && watch->permit->start.good_watch_minutes > 0 &&
                 effort_kept_as(watch, "visual") && surroundings_light(&watch->surroundings) == LIGHT_DAY &&
-                !sees_poorly(watch, poor, &until_ns) && !watch->effort.outage;
+                !sees_poorly(watch, poor, &until_ns);
     if (good && state->good_since_ns < 0)
         state->good_since_ns = watch->now_ns;
-    if (!good && state->good_since_ns >= 0) {
-        spans_add(&state->good, state->good_since_ns, watch->now_ns);
-        state->good_since_ns = -1;
+    if (!good)
+        start_end_stretch(watch);
+}
+
+/* When too much of the good watch will be too long ago, if it is enough now. */
+static int64_t good_ends_ns(const struct watch *watch)
+{
+    const struct permit_start *rule = &watch->permit->start;
+    const struct spans *good = &watch->start.good;
+    int64_t within_ns = time_from_s(rule->good_watch_within_hours * 3600),
+            since_ns = watch->now_ns - within_ns;
+    int64_t spare_ns = -time_from_minutes(rule->good_watch_minutes);
+    for (uint32_t i = 0; i < good->n; i++)
+        if (good->all[i].end_ns > since_ns)
+            spare_ns +=
+                good->all[i].end_ns - (good->all[i].start_ns > since_ns ? good->all[i].start_ns : since_ns);
+    if (!(rule->good_watch_minutes > 0) || watch->start.good_since_ns >= 0 || spare_ns < 0)
+        return INT64_MAX;
+    for (uint32_t i = 0; i < good->n; i++) {
+        if (good->all[i].end_ns <= since_ns)
+            continue;
+        int64_t from_ns = good->all[i].start_ns > since_ns ? good->all[i].start_ns : since_ns;
+        if (good->all[i].end_ns - from_ns > spare_ns)
+            return from_ns + spare_ns + within_ns + TIME_NS_PER_US;
+        spare_ns -= good->all[i].end_ns - from_ns;
     }
+    return INT64_MAX;
 }
 
 static int64_t due_ns(const struct watch *watch)
@@ -139,7 +170,11 @@ static int64_t due_ns(const struct watch *watch)
         int64_t midnight_ns = (unix_ns / DAY_NS + 1) * DAY_NS - watch->surroundings.zero_unix_ns;
         due = midnight_ns < due ? midnight_ns : due;
     }
-    return due;
+    if (rule->most_orders > 0)
+        for (uint32_t i = 0; i < watch->start.n_orders; i++)
+            if (watch->start.order_ns[i] + DAY_NS > watch->now_ns && watch->start.order_ns[i] + DAY_NS < due)
+                due = watch->start.order_ns[i] + DAY_NS;
+    return good_ends_ns(watch) < due ? good_ends_ns(watch) : due;
 }
 
 static void take_note(struct watch *watch, const struct note *note)

@@ -164,6 +164,7 @@ static void pass_outage(struct watch *watch, const struct event *event)
     bool outage = mark->outage_end_ns > mark->outage_start_ns;
     if (outage) {
         effort_outage(watch, true);
+        start_end_stretch(watch);
         watch->released_by[0] = watch->release_id[0] = '\0';
     }
     effort_accrue(watch, event->known_ns);

@@ -139,7 +139,8 @@ static void want_while_sounding(const struct watch *watch, const struct contact 
     struct why asked;
     enum permit_action unallowed = override_limit(watch, watch->source.unallowed);
     enum permit_action condition = override_limit(watch, conditions_ask(watch, &asked));
-    if (unallowed > ACTION_LOG && (!lead || contact_wanted(watch, lead) < unallowed)) {
+    if (unallowed > ACTION_LOG && unallowed >= condition &&
+        (!lead || contact_wanted(watch, lead) < unallowed)) {
         ground(wanted, watch, word_of(unallowed), GROUND_UNALLOWED, watch->permit->pre_watch_clause,
                watch->source.unallowed_why);
         if (unallowed == ACTION_HOLD)
@@ -173,7 +174,9 @@ static void want_while_sounding(const struct watch *watch, const struct contact 
 static bool want_for_contact(const struct watch *watch, const struct contact *lead, bool otherwise_allowed,
                              struct wanted *wanted)
 {
-    const struct contact *holder = lead ? lead : otherwise_allowed ? contact_holder(watch, true) : NULL;
+    bool holds =
+        lead && contact_wanted(watch, lead) >= ACTION_DELAY; /* less is no order while it is silent */
+    const struct contact *holder = holds ? lead : otherwise_allowed ? contact_holder(watch, true) : NULL;
     if (!holder)
         return false;
     wanted->key.word = contact_wanted(watch, holder) == ACTION_STOP ? ADVICE_STOP : ADVICE_DO_NOT_START;
@@ -184,7 +187,8 @@ static bool want_for_contact(const struct watch *watch, const struct contact *le
 static void want_in_break(const struct watch *watch, const struct contact *lead, struct wanted *wanted)
 {
     char text[FLOW_TEXT_SIZE];
-    const struct contact *question = lead ? lead : contact_lead(watch, false);
+    bool holds = lead && contact_wanted(watch, lead) >= ACTION_DELAY;
+    const struct contact *question = holds ? lead : contact_lead(watch, false);
     if (want_for_contact(watch, question, false, wanted) || is_blind(watch, wanted, ADVICE_DO_NOT_START)) {
         need_start(watch, wanted);
         return;

@@ -295,7 +295,9 @@ static void confirm(struct watch *watch, struct contact *contact, const struct n
     contact->grade = GRADE_ACT;
     contact->confirmed = true;
     contact->word_ns = watch->now_ns;
-    if (contact->state == CONTACT_DISMISSED)
+    /* One that was let rest as too weak to act on counts from its last detection. */
+    if (contact->state == CONTACT_DISMISSED ||
+        contact_clears_at_ns(contact, watch->permit, watch->now_ns) >= 0)
         contact->state = CONTACT_OPEN;
     watch_say_contact(watch, contact);
 }

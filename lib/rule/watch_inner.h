@@ -346,6 +346,8 @@ void conditions_judge_start(struct watch *watch);
 bool conditions_need_pre_watch(const struct watch *watch, enum phase to);
 /* What is left of an action while an override is in force (condition_override.c). */
 enum permit_action override_limit(const struct watch *watch, enum permit_action action);
+/* The program stops running: a stretch of watch in good conditions ends (condition_start.c). */
+void start_end_stretch(struct watch *watch);
 void conditions_show(const struct watch *watch, struct watch_view *view);
 
 /* watch_whose.c */
