@@ -42,6 +42,24 @@ static bool is_criteria(const struct part *part)
     return *part->name && found && (size_t)(found - part->text) < part->length;
 }
 
+/* What the catalogue of that run said of grades stands in its own part. */
+static void load_grades(struct recorded *recorded, struct problems *problems)
+{
+    struct certainty_table table = {0};
+    const struct {
+        const char *key;
+        double *out;
+    } numbers[] = {{"\ngrades.look_evidence = ", &table.look_evidence},
+                   {"\ngrades.act_evidence = ", &table.act_evidence},
+                   {"\ngrades.evidence_decay_s = ", &table.evidence_decay_s}};
+    for (size_t i = 0; i < sizeof numbers / sizeof numbers[0]; i++) {
+        const char *found = strstr(recorded->settings.data, numbers[i].key);
+        if (found)
+            *numbers[i].out = strtod(found + strlen(numbers[i].key), NULL);
+    }
+    rules_take_grades(&table, recorded->site, problems);
+}
+
 static void load_settings(struct recorded *recorded, struct problems *problems)
 {
     const char *at = recorded->settings.data;
@@ -90,6 +108,7 @@ static enum status load(struct recorded *recorded, const char *run_body, const c
     if (status != STATUS_OK)
         return status;
     load_settings(recorded, problems);
+    load_grades(recorded, problems);
     if (problems->count == 0)
         status = load_permit(recorded, permit_body, instead, problems);
     if (problems->count == 0 && status == STATUS_OK)

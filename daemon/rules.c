@@ -38,8 +38,7 @@ static void check_limits(const struct site *site, const struct rules *rules, str
                          rules->permit.criteria[i]);
 }
 
-/* What the site leaves to the catalogue. */
-static void take_grades(const struct certainty_table *table, struct site *site, struct problems *problems)
+void rules_take_grades(const struct certainty_table *table, struct site *site, struct problems *problems)
 {
     bool own = site->look_evidence > 0 || site->act_evidence > 0;
     if (!(site->look_evidence > 0))
@@ -73,7 +72,7 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
         check_limits(site, rules, problems);
     enum status status = permit != STATUS_OK ? permit : calls != STATUS_OK ? calls : criteria;
     if (calls == STATUS_OK)
-        take_grades(&rules->catalogue.certainty, site, problems);
+        rules_take_grades(&rules->catalogue.certainty, site, problems);
     if (problems->count != before)
         status = STATUS_BAD_FORMAT;
     if (status != STATUS_OK) {

@@ -30,6 +30,8 @@ void rules_destroy(struct rules *rules);
  * its guideline has ended, which values are unverified, and which the site states and who says so. */
 void rules_describe_permit(const struct permit *permit, struct text *out);
 
+/* What the site leaves to the catalogue: at what evidence contacts are graded, and how it fades. */
+void rules_take_grades(const struct certainty_table *table, struct site *site, struct problems *problems);
 /* The settings say where the array's edge is; a zone that begins there without it is a problem. */
 void rules_place_zones(const struct site *site, struct rules *rules, struct problems *problems);
 /* What the watch is set up with; it borrows the rules. */
