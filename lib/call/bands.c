@@ -27,7 +27,6 @@
 struct group {
     wide_lanes gain, a1[SECTIONS], a2[SECTIONS];
     wide_lanes y1[SECTIONS], y2[SECTIONS]; /* each section's last two outputs */
-    float x1, x2;                          /* the last two samples */
 };
 
 struct bands {
@@ -239,7 +238,8 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->n_groups = (n + WIDE_LANES - 1) / WIDE_LANES;
     bands->slot_frames = slot_frames;
     bands->block_slots = block_slots;
-    bands->history_slots = bands->at = history_slots + block_slots; /* of the block that is being filled */
+    /* Of the block that is being filled, and two frames before all of it for the filters. */
+    bands->history_slots = bands->at = history_slots + block_slots + 2;
     uint32_t spare = SPARE_HISTORIES * history_slots / block_slots + SPARE_BLOCKS;
     bands->stride = bands->history_slots + spare * block_slots;
     bands->power = calloc((size_t)n * bands->stride, sizeof(float));
@@ -269,7 +269,6 @@ void bands_reset(struct bands *bands)
         struct group *group = &bands->groups[g];
         memset(group->y1, 0, sizeof group->y1);
         memset(group->y2, 0, sizeof group->y2);
-        group->x1 = group->x2 = 0;
     }
     memset(bands->power, 0, sizeof(float) * bands->n * bands->stride);
     memset(bands->samples, 0, sizeof(float) * bands->stride * bands->slot_frames);
@@ -278,29 +277,61 @@ void bands_reset(struct bands *bands)
 
 /* Direct form I: `difference` is the section's input less that of two frames before. Its outputs are what the
  * next section needs of its inputs, and the chain from frame to frame is one product and one sum long. */
-#define SECTION(difference, s) (((difference)-g.a2[s] * g.y2[s]) - g.a1[s] * g.y1[s])
+#define SECTION(difference, s, recent, old) (((difference)-g.a2[s] * (old)[s]) - g.a1[s] * (recent)[s])
 
+/* One frame, x its input less that of two frames before: the new outputs take the place of the oldest, so
+ * that nothing is moved when the next frame has the two in turned roles. */
+#define FRAME(x, recent, old, sum)                                                                           \
+    do {                                                                                                     \
+        const wide_lanes first = SECTION(g.gain * (x), 0, recent, old);                                      \
+        const wide_lanes second = SECTION(first - (old)[0], 1, recent, old);                                 \
+        const wide_lanes third = SECTION(second - (old)[1], 2, recent, old);                                 \
+        (old)[0] = first;                                                                                    \
+        (old)[1] = second;                                                                                   \
+        (old)[2] = third;                                                                                    \
+        (sum) += third * third;                                                                              \
+    } while (0)
+
+/* A pair of slots has an even number of frames, after which all outputs are in their places again;
+ * block_slots odd: the last slot is one by itself. x[-2] and x[-1] are the two samples before. */
 LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_t n_slots,
                                     uint32_t slot_frames, float out[][WIDE_LANES], float *out_sums)
 {
     struct group g = *group;
     const float scale = 1.0F / (float)slot_frames;
     wide_lanes block = {0};
-    for (uint32_t slot = 0; slot < n_slots; slot++) {
+    uint32_t slot = 0;
+    for (; slot + 2 <= n_slots; slot += 2) {
+        wide_lanes sums[2] = {{0}, {0}};
+        for (uint32_t k = 0; k < slot_frames / 2; k++, x += 2) {
+            FRAME(x[0] - x[-2], g.y1, g.y2, sums[0]);
+            FRAME(x[1] - x[-1], g.y2, g.y1, sums[0]);
+        }
+        if (slot_frames % 2) {
+            FRAME(x[0] - x[-2], g.y1, g.y2, sums[0]);
+            FRAME(x[1] - x[-1], g.y2, g.y1, sums[1]);
+            x += 2;
+        }
+        for (uint32_t k = 0; k < slot_frames / 2; k++, x += 2) {
+            FRAME(x[0] - x[-2], g.y1, g.y2, sums[1]);
+            FRAME(x[1] - x[-1], g.y2, g.y1, sums[1]);
+        }
+        sums[0] *= scale;
+        sums[1] *= scale;
+        memcpy(out[slot], &sums[0], sizeof sums[0]);
+        memcpy(out[slot + 1], &sums[1], sizeof sums[1]);
+        block += sums[0];
+        block += sums[1];
+    }
+    for (; slot < n_slots; slot++) {
         wide_lanes sum = {0};
         for (uint32_t k = 0; k < slot_frames; k++, x++) {
-            const wide_lanes first = SECTION(g.gain * (*x - g.x2), 0);
-            const wide_lanes second = SECTION(first - g.y2[0], 1);
-            const wide_lanes third = SECTION(second - g.y2[1], 2);
-            g.x2 = g.x1;
-            g.x1 = *x;
-            g.y2[0] = g.y1[0];
-            g.y1[0] = first;
-            g.y2[1] = g.y1[1];
-            g.y1[1] = second;
-            g.y2[2] = g.y1[2];
-            g.y1[2] = third;
-            sum += third * third;
+            FRAME(x[0] - x[-2], g.y1, g.y2, sum);
+            for (uint32_t s = 0; s < SECTIONS; s++) {
+                const wide_lanes newest = g.y2[s];
+                g.y2[s] = g.y1[s];
+                g.y1[s] = newest;
+            }
         }
         sum *= scale;
         memcpy(out[slot], &sum, sizeof sum);

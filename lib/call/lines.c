@@ -1,24 +1,21 @@
 /* Lines that last, pick-up, flow; see lines.h. */
 #include "call/lines.h"
 #include "base/units.h"
+#include "call/lines_family.h"
 #include "dsp/decimate.h"
 #include "dsp/spectrum.h"
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
-#define PERIOD_S 2.0
 #define STAND_OUT 4.0 /* 6 dB */
 #define NEAR 3        /* bins beside a line that it must stand above: from here ... */
 #define FAR 10        /* ... to here */
-#define MAX_LINES 48
-#define MOST_TOLD 16 /* lines of one period */
+#define MOST_TOLD 16  /* lines of one period */
 #define SLOW_N 4096
 #define SLOW_BINS (SLOW_N / 4 + 1) /* of which the phase is known */
 #define SAME LINES_SAME
 #define TELL_S 10.0
-#define FAMILY_ERROR 0.006
-#define MOST_HARMONICS 12
 #define FLOW_COHERENCE 0.2
 #define FLOW_POWER 2.2 /* of frequency, from 20 to 100 Hz */
 
@@ -29,12 +26,6 @@ struct means {
     uint64_t start_frame;
     float *sum;   /* [n_bins] */
     uint8_t *age; /* [n_bins]: periods in a row with a line here */
-};
-
-struct line {
-    double hz, ratio, power;
-    uint32_t bin, age;
-    bool same; /* on both channels */
 };
 
 struct lines {
@@ -175,7 +166,7 @@ static double beside(const float *sum, uint32_t bin)
 }
 
 /* Lines of the period, in rising frequency; ages each. */
-static uint32_t find_lines(struct means *means, double low_hz, double high_hz, struct line out[MAX_LINES])
+static uint32_t find_lines(struct means *means, double low_hz, double high_hz, struct line out[LINES_MOST])
 {
     uint32_t n = 0;
     uint32_t first = (uint32_t)fmax(FAR + 1, ceil(low_hz / means->bin_hz));
@@ -193,7 +184,7 @@ static uint32_t find_lines(struct means *means, double low_hz, double high_hz, s
         means->age[i] = here < UINT8_MAX ? here + 1 : UINT8_MAX;
         double a = log(fmaxf(sum[i - 1], 1e-30F)), b = log(sum[i]), c = log(fmaxf(sum[i + 1], 1e-30F));
         double bend = a - 2 * b + c;
-        if (n < MAX_LINES)
+        if (n < LINES_MOST)
             out[n++] = (struct line){.hz = (i + (bend < 0 ? 0.5 * (a - c) / bend : 0)) * means->bin_hz,
                                      .bin = i,
                                      .age = means->age[i],
@@ -203,57 +194,6 @@ static uint32_t find_lines(struct means *means, double low_hz, double high_hz, s
     return n;
 }
 
-/* How many lines stand at whole multiples of the one at hz. */
-static uint32_t harmonics(const struct line *lines, uint32_t n, double hz, double bin_hz)
-{
-    uint32_t count = 0;
-    for (uint32_t i = 0; i < n; i++) {
-        double multiple = round(lines[i].hz / hz);
-        count += multiple >= 2 && multiple <= MOST_HARMONICS &&
-                 fabs(lines[i].hz - multiple * hz) <= FAMILY_ERROR * lines[i].hz + bin_hz / 2;
-    }
-    return count;
-}
-
-/* Whether the line or one of which it is a multiple leads a family in the class's band. */
-static bool is_of_family(const struct call_class *class, const struct line *all, uint32_t n,
-                         const struct line *line, double bin_hz)
-{
-    for (uint32_t i = 0; i < n; i++) {
-        double multiple = round(line->hz / all[i].hz);
-        if (multiple >= 1 && multiple <= MOST_HARMONICS && all[i].hz >= class->low_hz &&
-            all[i].hz <= class->high_hz &&
-            fabs(line->hz - multiple * all[i].hz) <= FAMILY_ERROR * line->hz + bin_hz / 2 &&
-            harmonics(all, n, all[i].hz, bin_hz) >= class->sound.min_harmonics)
-            return true;
-    }
-    return false;
-}
-
-static uint32_t class_of(const struct lines *lines, const struct line *all, uint32_t n,
-                         const struct line *line, double bin_hz)
-{
-    uint32_t best = lines->setup.n_classes;
-    double least = INFINITY;
-    for (uint32_t c = 0; c < lines->setup.n_classes; c++) {
-        const struct call_class *class = &lines->setup.classes[c];
-        const struct other_shape *sound = &class->sound;
-        bool fits = sound->min_harmonics > 0 ? is_of_family(class, all, n, line, bin_hz)
-                                             : line->hz >= class->low_hz && line->hz <= class->high_hz;
-        if (!fits || line->age * PERIOD_S < sound->min_s ||
-            !(sound->manner == MANNER_LINE || (sound->manner == MANNER_PICK_UP && line->same)))
-            continue;
-        double allowance = log(class->high_hz / class->low_hz) +
-                           (sound->manner == MANNER_PICK_UP ? -100.0 : 0.0) -
-                           (sound->min_harmonics > 0 ? 50.0 : 0.0);
-        if (allowance < least) {
-            least = allowance;
-            best = c;
-        }
-    }
-    return best;
-}
-
 static void tell(uint32_t c, const struct found_call *found, const struct found_sink *sink)
 {
     struct found_call whole = *found;
@@ -261,51 +201,16 @@ static void tell(uint32_t c, const struct found_call *found, const struct found_
     sink->take(sink->context, &whole);
 }
 
-static bool is_multiple(const struct line *line, const struct line *of, double bin_hz)
-{
-    double multiple = round(line->hz / of->hz);
-    return multiple >= 1 && fabs(line->hz - multiple * of->hz) <= FAMILY_ERROR * line->hz / 2 + bin_hz / 2;
-}
-
-static bool is_root(const struct line *all, uint32_t i, double bin_hz)
-{
-    for (uint32_t k = 0; k < i; k++)
-        if (is_multiple(&all[i], &all[k], bin_hz))
-            return false;
-    return true;
-}
-
-/* What two thirds of a family's power are, all of it is: weak lines are not told well, and at some
- * frequencies any two hydrophones hear a sound in phase. */
-static void agree(struct line *all, uint32_t n, double bin_hz)
-{
-    bool same[MAX_LINES] = {false};
-    for (uint32_t i = 0; i < n; i++) {
-        double power = 0, alike = 0;
-        if (!is_root(all, i, bin_hz))
-            continue;
-        for (uint32_t k = i; k < n; k++)
-            if (is_multiple(&all[k], &all[i], bin_hz)) {
-                power += all[k].power;
-                alike += all[k].same ? all[k].power : 0;
-            }
-        for (uint32_t k = i; k < n && 3 * alike >= 2 * power; k++)
-            same[k] = same[k] || is_multiple(&all[k], &all[i], bin_hz);
-    }
-    for (uint32_t i = 0; i < n; i++)
-        all[i].same = same[i];
-}
-
 /* Each class is told each 10 s, a line at a time: the newest 10 s of it, and at first all of it. */
 static void tell_lines(struct lines *lines, const struct means *means, const struct line *all, uint32_t n,
                        double end_frame, uint64_t known, const struct found_sink *sink)
 {
     bool due[CATALOGUE_MAX_CLASSES], used[CATALOGUE_MAX_CLASSES] = {false};
-    double period = PERIOD_S * lines->setup.rate_hz;
+    double period = LINES_PERIOD_S * lines->setup.rate_hz;
     for (uint32_t c = 0; c < lines->setup.n_classes; c++)
         due[c] = end_frame - lines->told[c] >= TELL_S * lines->setup.rate_hz - period / 2;
     for (uint32_t i = 0, n_told = 0; i < n && n_told < MOST_TOLD; i++) {
-        uint32_t c = class_of(lines, all, n, &all[i], means->bin_hz);
+        uint32_t c = family_class(&lines->setup, all, n, &all[i], means->bin_hz);
         if (c == lines->setup.n_classes || !due[c])
             continue;
         n_told++;
@@ -334,14 +239,14 @@ static void push_fast(struct lines *lines, const struct other_frame *frame, cons
     for (uint32_t i = 0; i < means->n_bins; i++)
         means->sum[i] += frame->power[i];
     means->n++;
-    if (means->n * lines->setup.frame_s < PERIOD_S)
+    if (means->n * lines->setup.frame_s < LINES_PERIOD_S)
         return;
-    struct line found[MAX_LINES];
+    struct line found[LINES_MOST];
     uint32_t n = find_lines(means, 0.4 * lines->slow_rate_hz, lines->setup.rate_hz / 2, found);
     for (uint32_t i = 0; i < n && second; i++)
         found[i].same = lines_same_on_both(frame, second, found[i].hz, lines->setup.rate_hz);
     if (second)
-        agree(found, n, means->bin_hz);
+        family_agree(found, n, means->bin_hz);
     uint64_t end = frame->start_frame + frame->n;
     tell_lines(lines, means, found, n, (double)end, end - 1, sink);
     clear(lines, means, end);
@@ -387,11 +292,11 @@ static void look_for_flow(struct lines *lines, double end_frame, uint64_t known,
     for (uint32_t c = 0; c < lines->setup.n_classes; c++) {
         const struct call_class *class = &lines->setup.classes[c];
         if (class->sound.manner != MANNER_FLOW || !flows ||
-            lines->flow_periods * PERIOD_S < class->sound.min_s ||
-            end_frame - lines->told[c] < (TELL_S - PERIOD_S / 2) * lines->setup.rate_hz)
+            lines->flow_periods * LINES_PERIOD_S < class->sound.min_s ||
+            end_frame - lines->told[c] < (TELL_S - LINES_PERIOD_S / 2) * lines->setup.rate_hz)
             continue;
         double start =
-            fmax(end_frame - lines->flow_periods * PERIOD_S * lines->setup.rate_hz, lines->told[c]);
+            fmax(end_frame - lines->flow_periods * LINES_PERIOD_S * lines->setup.rate_hz, lines->told[c]);
         const struct found_call found = {.start_frame = fmax(0, start),
                                          .end_frame = end_frame,
                                          .known_frame = known,
@@ -408,14 +313,14 @@ static void look_for_flow(struct lines *lines, double end_frame, uint64_t known,
 static void end_slow(struct lines *lines, uint64_t end, const struct found_sink *sink)
 {
     struct means *means = &lines->slow;
-    struct line found[MAX_LINES];
+    struct line found[LINES_MOST];
     uint32_t n = find_lines(means, 5, 0.4 * lines->slow_rate_hz, found);
     for (uint32_t i = 0; i < n && lines->setup.pair; i++) {
         const float *c = lines->cross + 4 * found[i].bin;
         found[i].same = found[i].bin < SLOW_BINS && lines->unlike[found[i].bin] < SAME * (c[2] + c[3]);
     }
     if (lines->setup.pair)
-        agree(found, n, means->bin_hz);
+        family_agree(found, n, means->bin_hz);
     double late = decimator_get_delay(lines->decimators[0]) * lines->sums;
     tell_lines(lines, means, found, n, (double)end - late, end - 1, sink);
     look_for_flow(lines, (double)end - late, end - 1, sink);
@@ -483,7 +388,7 @@ void lines_push(struct lines *lines, const struct other_frame *frame, const floa
         memmove(lines->held[c], lines->held[c] + SLOW_N / 2, SLOW_N / 2 * sizeof(float));
     lines->filled = SLOW_N / 2; /* what the last frame had beyond is lost: a few samples of a background */
     uint64_t end = frame->start_frame + frame->n;
-    if ((double)(end - lines->slow.start_frame) >= PERIOD_S * lines->setup.rate_hz)
+    if ((double)(end - lines->slow.start_frame) >= LINES_PERIOD_S * lines->setup.rate_hz)
         end_slow(lines, end, sink);
 }
 

@@ -183,10 +183,18 @@ void pulse_search_reset(struct pulse_search *search)
 /* Mean power of a guard's window that ends with slot `last`. */
 static double guard_power(const struct pulse_search *search, const struct guard *guard, int64_t last)
 {
-    double sum = 0;
-    for (uint32_t p = 0; p < guard->parts.n; p++)
-        sum += window_power(bands_get_power(search->setup.bands, guard->parts.bands[p]), last, guard->window);
-    return sum;
+    lanes sums = {0};
+    float rest = 0;
+    for (uint32_t p = 0; p < guard->parts.n; p++) {
+        const float *power =
+            bands_get_power(search->setup.bands, guard->parts.bands[p]) + last + 1 - (int64_t)guard->window;
+        uint32_t i = 0;
+        for (; i + LANES <= guard->window; i += LANES)
+            sums += lanes_load(power + i);
+        for (; i < guard->window; i++)
+            rest += power[i];
+    }
+    return (lanes_sum(sums) + (double)rest) / guard->window;
 }
 
 /* Takes one of the first windows; gives whether they are enough. */

@@ -40,8 +40,14 @@ struct pulse_shaper {
     float *window, *frame, *noise;
     fftwf_complex *bins, *analytic;
     fftwf_plan forward, backward;
-    float *envelope; /* [3 * reach] */
+    float *envelope; /* [envelope_room]: 3 * reach and zeros */
 };
+
+/* Of the envelope, with room for whole vectors that begin within it. */
+static size_t envelope_room(const struct pulse_shaper *shaper)
+{
+    return 3 * (size_t)shaper->reach + 2 * WIDE_LANES;
+}
 
 static void find_edges(struct pulse_shaper *shaper)
 {
@@ -90,7 +96,7 @@ enum status pulse_shaper_create(const struct call_class *call_class, double rate
     shaper->reach = (uint32_t)fmax(reach_s / bin_s, shaper->first_lag + PULSE_SHAPE_LAGS);
     shaper->lag_step = (double)(shaper->reach - shaper->first_lag) / PULSE_SHAPE_LAGS;
     shaper->window = calloc(shaper->segment, sizeof(float));
-    shaper->envelope = calloc(3 * (size_t)shaper->reach, sizeof(float));
+    shaper->envelope = calloc(envelope_room(shaper), sizeof(float));
     shaper->noise = calloc(shaper->n / 2 + 1, sizeof(float));
     shaper->frame = fftwf_alloc_real(shaper->n);
     shaper->bins = fftwf_alloc_complex(shaper->n / 2 + 1);
@@ -242,31 +248,54 @@ static void find_time_course(const struct pulse_shaper *shaper, struct pulse_sha
     out->sweep_hz_s = (float)slope_between(shaper, from, to);
 }
 
+/* Each power's root, less the noise's, where there is power; gives the sum of their squares. n is padded to
+ * whole vectors with what has no power. */
+LANES_WIDE static float take_roots(float *envelope, uint32_t n, float per_bin, float noise)
+{
+    wide_lanes power, energy = {0};
+    const wide_lanes none = {0};
+    for (uint32_t i = 0; i < n; i += WIDE_LANES) {
+        wide_load(&power, envelope + i);
+        const wide_mask heard = power > none;
+        for (uint32_t lane = 0; lane < WIDE_LANES; lane++)
+            power[lane] = sqrtf(power[lane] * per_bin);
+        power = WIDE_CHOOSE(heard, power - noise, none);
+        wide_store(envelope + i, &power);
+        energy += power * power;
+    }
+    float sum = 0;
+    for (uint32_t lane = 0; lane < WIDE_LANES; lane++)
+        sum += energy[lane];
+    return sum;
+}
+
 /* Root of the power over the noise's, in bins from one reach before the arrival to two after it; gives its
  * energy. */
 static double find_envelope(struct pulse_shaper *shaper, const struct pulse_sound *sound)
 {
-    double noise = NOISE_ROOT * sqrt(sound->background_pa2), energy = 0;
-    for (uint32_t i = 0; i < 3 * shaper->reach; i++) {
-        int64_t first = ((int64_t)i - shaper->reach) * shaper->bin_slots, last = first + shaper->bin_slots;
+    const int64_t reach = shaper->reach, per_bin = shaper->bin_slots;
+    const int64_t before = sound->slots_before > 0 ? sound->slots_before / per_bin : 0;
+    const int64_t after = sound->slots_after > 0 ? sound->slots_after / per_bin : 0;
+    const int64_t first = before < reach ? -before : -reach, end = after < 2 * reach ? after : 2 * reach;
+    const float *power = sound->power + first * per_bin;
+    memset(shaper->envelope, 0, envelope_room(shaper) * sizeof *shaper->envelope);
+    for (int64_t bin = first; bin < end; bin++, power += per_bin) {
         float sum = 0;
-        if (first >= -sound->slots_before && last <= sound->slots_after)
-            for (int64_t slot = first; slot < last; slot++)
-                sum += sound->power[slot];
-        shaper->envelope[i] = sum > 0 ? sqrtf(sum / (float)shaper->bin_slots) - (float)noise : 0;
-        energy += (double)shaper->envelope[i] * shaper->envelope[i];
+        for (int64_t slot = 0; slot < per_bin; slot++)
+            sum += power[slot];
+        shaper->envelope[bin + reach] = sum;
     }
-    return energy;
+    const uint32_t n = (3 * shaper->reach + WIDE_LANES - 1) / WIDE_LANES * WIDE_LANES;
+    return (double)take_roots(shaper->envelope, n, 1.0F / (float)per_bin,
+                              (float)(NOISE_ROOT * sqrt(sound->background_pa2)));
 }
 
-/* Of a profile and itself, summed over lags from `from` to `to`. */
+/* Of a profile and itself, summed over lags from `from` to `to`. Zeros follow the profile (envelope_room). */
 LANES_WIDE static float sum_products(const float *profile, uint32_t n, uint32_t from, uint32_t to)
 {
-    double sum = 0;
-    for (uint32_t lag = from; lag < to; lag++) {
-        wide_lanes sums = {0}, more = {0}, a, b;
-        uint32_t i = 0;
-        for (; i + 2 * WIDE_LANES <= n - lag; i += 2 * WIDE_LANES) {
+    wide_lanes sums = {0}, more = {0}, a, b;
+    for (uint32_t lag = from; lag < to; lag++)
+        for (uint32_t i = 0; i < n - lag; i += 2 * WIDE_LANES) {
             wide_load(&a, profile + i);
             wide_load(&b, profile + i + lag);
             sums += a * b;
@@ -274,12 +303,10 @@ LANES_WIDE static float sum_products(const float *profile, uint32_t n, uint32_t 
             wide_load(&b, profile + i + WIDE_LANES + lag);
             more += a * b;
         }
-        for (; i < n - lag; i++)
-            sum += profile[i] * profile[i + lag];
-        sums += more;
-        for (uint32_t lane = 0; lane < WIDE_LANES / 2; lane++)
-            sum += sums[lane] + sums[lane + WIDE_LANES / 2];
-    }
+    sums += more;
+    double sum = 0;
+    for (uint32_t lane = 0; lane < WIDE_LANES / 2; lane++)
+        sum += (double)sums[lane] + (double)sums[lane + WIDE_LANES / 2];
     return (float)sum;
 }
 

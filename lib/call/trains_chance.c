@@ -80,17 +80,30 @@ static double competing_about(const struct trains *trains, double level_db, doub
     return sum;
 }
 
+/* How many pulses a second noise gives within each step of level: looked up once for a chain, whose members
+ * ask for the same ones. Ends where noise gives no more that matter. */
+static void gather_noise(struct trains *trains)
+{
+    const double least_db = trains->call_class.train.min_snr_db;
+    double above = trains_noise_rate(trains, units_power_ratio(least_db));
+    trains->n_noise = 0;
+    while (trains->n_noise < NOISE_STEPS && above > 1e-6) {
+        const double next_db = least_db + (trains->n_noise + 1) * NOISE_STEP_DB;
+        const double next = trains_noise_rate(trains, units_power_ratio(next_db));
+        trains->noise_in[trains->n_noise++] = above - next;
+        above = next;
+    }
+}
+
 /* How many of them a second noise explains. */
 static double noise_about(const struct trains *trains, double level_db, double spread_db)
 {
-    const double step_db = 1, last_db = level_db + GATE_DEVIATIONS * spread_db;
-    double least_db = trains->call_class.train.min_snr_db, sum = 0;
-    double above = trains_noise_rate(trains, units_power_ratio(least_db));
-    for (double at_db = least_db; at_db < last_db && above > 1e-6; at_db += step_db) {
-        double next = trains_noise_rate(trains, units_power_ratio(at_db + step_db));
-        sum += (above - next) * trains_fit_level(at_db + step_db / 2 - level_db, spread_db);
-        above = next;
-    }
+    const double least_db = trains->call_class.train.min_snr_db;
+    const double last_db = level_db + GATE_DEVIATIONS * spread_db;
+    double sum = 0;
+    for (uint32_t i = 0; i < trains->n_noise && least_db + i * NOISE_STEP_DB < last_db; i++)
+        sum += trains->noise_in[i] *
+               trains_fit_level(least_db + (i + 0.5) * NOISE_STEP_DB - level_db, spread_db);
     return sum;
 }
 
@@ -139,6 +152,7 @@ static uint32_t find_surest(const struct trains *trains, const struct competitor
 uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 {
     struct competitors found = gather_competitors(trains, n, least);
+    gather_noise(trains);
     double over = log(2);
     uint32_t wide = find_surest(trains, &found, n, least, LEVEL_DEVIATION_DB, &over);
     uint32_t steady = find_surest(trains, &found, n, least, STEADY_DEVIATION_DB, &over);

@@ -24,6 +24,8 @@
 #define SAMPLED 48          /* pulses before one, from which it is told how often such pulses come */
 #define COMPETING_STEPS 128 /* of COMPETING_STEP_DB, from 0 dB */
 #define COMPETING_STEP_DB 0.5
+#define NOISE_STEPS 64 /* of NOISE_STEP_DB, from the class's least level */
+#define NOISE_STEP_DB 1.0
 #define HIDDEN UINT32_MAX
 
 /* A train is either steady or free in its rhythm; a chain is scored as both. */
@@ -95,6 +97,8 @@ struct trains {
     struct open_train open[MAX_OPEN];
     uint64_t members[TRAINS_MAX_MEMBERS];
     float competing[COMPETING_STEPS]; /* strays by level, by how well they could take a member's place */
+    double noise_in[NOISE_STEPS];     /* [n_noise]: pulses a second that noise gives in each step of level */
+    uint32_t n_noise;
     double sorted[TRAINS_MAX_MEMBERS], arrivals[TRAINS_MAX_MEMBERS];
     uint32_t chain_link[TRAINS_MAX_MEMBERS];
     double certain_excess, certain_strays_hz; /* of what trains_find_certain found last */

@@ -125,6 +125,41 @@ static inline void take_four_apart(const struct spectrum *spectrum, uint32_t k, 
     *high = (struct four_bins){even_re - turned_re, even_im - turned_im};
 }
 
+/* The same for eight bins, squared, as far as there are so many below the middle; gives the first bin left.
+ */
+LANES_WIDE static uint32_t square_eights(const struct spectrum *spectrum, float *power)
+{
+    const uint32_t m = spectrum->n / 2;
+    const float scale = spectrum->scale / 4;
+    uint32_t k = 1;
+    for (; 2 * (k + WIDE_LANES - 1) < m; k += WIDE_LANES) {
+        const float *a = spectrum->halves + 2 * k, *b = spectrum->halves + 2 * (m - k - WIDE_LANES + 1);
+        wide_lanes a0, a1, b0, b1, turn_re, turn_im;
+        wide_load(&a0, a);
+        wide_load(&a1, a + WIDE_LANES);
+        wide_load(&b0, b);
+        wide_load(&b1, b + WIDE_LANES);
+        wide_load(&turn_re, spectrum->turn_re + k);
+        wide_load(&turn_im, spectrum->turn_im + k);
+        const wide_lanes a_re = __builtin_shufflevector(a0, a1, 0, 2, 4, 6, 8, 10, 12, 14);
+        const wide_lanes a_im = __builtin_shufflevector(a0, a1, 1, 3, 5, 7, 9, 11, 13, 15);
+        const wide_lanes b_re = __builtin_shufflevector(b1, b0, 6, 4, 2, 0, 14, 12, 10, 8);
+        const wide_lanes b_im = __builtin_shufflevector(b1, b0, 7, 5, 3, 1, 15, 13, 11, 9);
+        const wide_lanes even_re = a_re + b_re, even_im = a_im - b_im;
+        const wide_lanes odd_re = a_re - b_re, odd_im = a_im + b_im;
+        const wide_lanes turned_re = turn_re * odd_re - turn_im * odd_im;
+        const wide_lanes turned_im = turn_re * odd_im + turn_im * odd_re;
+        const wide_lanes low_re = even_re + turned_re, low_im = even_im + turned_im;
+        const wide_lanes high_re = even_re - turned_re, high_im = even_im - turned_im;
+        const wide_lanes low = (low_re * low_re + low_im * low_im) * scale;
+        wide_lanes high = (high_re * high_re + high_im * high_im) * scale;
+        high = __builtin_shufflevector(high, high, 7, 6, 5, 4, 3, 2, 1, 0);
+        wide_store(power + k, &low);
+        wide_store(power + m - k - WIDE_LANES + 1, &high);
+    }
+    return k;
+}
+
 static void square_bins(const struct spectrum *spectrum, float *power)
 {
     const uint32_t m = spectrum->n / 2;
@@ -132,7 +167,7 @@ static void square_bins(const struct spectrum *spectrum, float *power)
     /* DC and Nyquist have no mirror bin to stand for. */
     power[0] = (first[0] + first[1]) * (first[0] + first[1]) * spectrum->scale / 2;
     power[m] = (first[0] - first[1]) * (first[0] - first[1]) * spectrum->scale / 2;
-    uint32_t k = 1;
+    uint32_t k = square_eights(spectrum, power);
     for (; 2 * (k + 3) < m; k += LANES) {
         struct four_bins low, high;
         take_four_apart(spectrum, k, &low, &high);
@@ -148,14 +183,24 @@ static void square_bins(const struct spectrum *spectrum, float *power)
     }
 }
 
+LANES_WIDE static void apply_window(const float *restrict frame, const float *restrict window, uint32_t n,
+                                    float *restrict out)
+{
+    wide_lanes x, w;
+    uint32_t i = 0;
+    for (; i + WIDE_LANES <= n; i += WIDE_LANES) {
+        wide_load(&x, frame + i);
+        wide_load(&w, window + i);
+        x *= w;
+        wide_store(out + i, &x);
+    }
+    for (; i < n; i++)
+        out[i] = frame[i] * window[i];
+}
+
 void spectrum_power(struct spectrum *spectrum, const float *frame, float *out_power)
 {
-    const uint32_t n = spectrum->n;
-    uint32_t i = 0;
-    for (; i + LANES <= n; i += LANES)
-        lanes_store(spectrum->frame + i, lanes_load(frame + i) * lanes_load(spectrum->window + i));
-    for (; i < n; i++)
-        spectrum->frame[i] = frame[i] * spectrum->window[i];
+    apply_window(frame, spectrum->window, spectrum->n, spectrum->frame);
     fftwf_execute(spectrum->plan);
     square_bins(spectrum, out_power);
 }

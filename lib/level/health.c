@@ -222,9 +222,13 @@ static void add_digest(uint64_t *digest, const struct cell *cell)
 static uint32_t find_period(const float *end, uint32_t longest, uint32_t from)
 {
     const float *last = end - PATTERN;
-    for (uint32_t lag = from; lag <= longest; lag++)
+    for (uint32_t lag = from; lag <= longest; lag++) {
+        /* Most lags have no sample equal to the last one: they are passed four at a time. */
+        while (lag + LANES <= longest && !lanes_any(lanes_load(last - lag - LANES + 1) == lanes_all(last[0])))
+            lag += LANES;
         if (last[-(ptrdiff_t)lag] == last[0] && memcmp(last - lag, last, PATTERN * sizeof *last) == 0)
             return lag;
+    }
     return 0;
 }
 
