@@ -198,7 +198,9 @@ class Oracle:
                 continue
             if a.distance is not None:
                 p = p_inside(a.distance, self.reach(z))
-                if p >= self.p["p_prepare"]:
+                # A call that is known late says no more than the newer word on where the animal was.
+                newer = any(d[1] == i and d[2] == "stated" and d[0] >= when for d in a.detections)
+                if p >= self.p["p_prepare"] and not newer:
                     a.detections.append([when, i, "stated"])
                 a.sure |= p >= self.p["p_act"]
             elif policy != "ignore":
