@@ -1,4 +1,5 @@
 /* What people enter, and what comes of it. */
+#include "base/time.h"
 #include "rule/watch_inner.h"
 #include <math.h>
 #include <stdarg.h>
@@ -86,6 +87,22 @@ static void answer_take(struct watch *watch, const struct note *note)
         note_without_effect(watch, "no finding %.40s is known to be answered", note->finding);
 }
 
+/* Clocks of people differ by so much (own choice). */
+#define AHEAD_NS (60 * TIME_NS_PER_S)
+
+/* Every note counts from when it becomes known; a time before that is kept beside it, one after it is said.
+ */
+static void find_ahead(struct watch *watch, const struct note *note)
+{
+    struct why why;
+    if (note->occurred_ns <= watch->now_ns + AHEAD_NS)
+        return;
+    why_reset(&why, "", "the note '%s' states a time %.0f min ahead: it counts from now",
+              note_kind_text(note->kind), time_to_s(note->occurred_ns - watch->now_ns) / 60);
+    why_add_cause(&why, watch->recent.causes[0]);
+    watch_say_finding(watch, "note ahead of time", "firm", &why);
+}
+
 void note_take(struct watch *watch, const struct note *note)
 {
     const char *lacks;
@@ -98,6 +115,7 @@ void note_take(struct watch *watch, const struct note *note)
         note_without_effect(watch, "the note '%s' lacks a good '%s'", note_kind_text(note->kind), lacks);
         return;
     }
+    find_ahead(watch, note);
     conditions_take_note(watch, note);
     switch (note->kind) {
     case NOTE_SIGN_ON:

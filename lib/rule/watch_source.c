@@ -77,6 +77,13 @@ void source_job(struct watch *watch, const struct note *note)
 {
     struct source *source = &watch->source;
     if (strcmp(note->answer, "open") == 0) {
+        if (*source->job && strcmp(source->job, note->job) != 0) {
+            struct why why;
+            why_reset(&why, "", "job %.31s is opened while job %.31s is open: that one ends here", note->job,
+                      source->job);
+            why_add_cause(&why, watch->recent.causes[0]);
+            watch_say_finding(watch, "job not closed", "firm", &why);
+        }
         snprintf(source->job, sizeof source->job, "%.31s", note->job);
         source->n_impulses = 0;
         watch->job_heard = watch->n_heard;

@@ -13,6 +13,7 @@ import sys
 
 sys.path.insert(0, "tests/support")
 import permit_oracle as oracle
+from permit_day import Day
 from permit_oracle import MIN, S
 
 BUILD = os.environ.get("HUSHWATCH_BUILD", "build")
@@ -186,7 +187,7 @@ def lines(s, groups):
 
 def expected(s, p):
     o = oracle.Oracle(p, s["events"], s["depth"], s["half"], s["light"])
-    day, out = oracle.Day(o), []
+    day, out = Day(o), []
     for i, e in enumerate(s["events"]):
         day.take(e)
         if i + 1 == len(s["events"]) or s["events"][i + 1]["at"] > e["at"]:
