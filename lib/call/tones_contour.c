@@ -7,6 +7,8 @@
 #define FLAT_SHARE 0.05  /* of its frequency, or FLAT_BINS: what is flat within FLAT_S */
 #define FLAT_BINS 3
 #define FLAT_S 5.0
+#define SWEPT_BINS 2.0    /* from end to end: means of several cells, which noise moves less */
+#define SETTLED_BINS 1.0  /* by which what has settled still drifts: a steady sweep goes on */
 #define MOST_JUMP 4       /* bins that one jump counts: a whistle's few steps are no hopping */
 #define MOST_WEIGHT 100.0 /* of one frame: 20 dB */
 #define NOISE_RATIO 3.0   /* power over background that noise alone has in 1 cell of 20 */
@@ -229,17 +231,18 @@ static double measure_remains(const struct tracer *tracer, uint64_t last, uint32
     return along > 0 && n_after > 0 ? after / n_after / along : 0;
 }
 
-/* How far what is flat may go, at the highest frequency. */
-static double flat_hz(const struct contour *contour, double high_hz)
+/* How far what is flat may go: so many bins, or its share of the highest frequency. */
+static double flat_hz(const struct contour *contour, double bins, double high_hz)
 {
-    return fmax(FLAT_BINS * contour->bin_hz,
-                high_hz * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
+    return fmax(bins * contour->bin_hz, high_hz * fmin(FLAT_SHARE, FLAT_SHARE * FLAT_S / contour->seconds));
 }
 
 bool contour_is_flat(const struct contour *contour)
 {
-    const double high = contour->high_hz, extent = high - contour->low_hz, most = flat_hz(contour, high);
-    return extent <= most || (fabs(contour->sweep_hz) <= most && contour->bend_hz <= 2 * contour->bin_hz);
+    const double high = contour->high_hz, extent = high - contour->low_hz;
+    return extent <= flat_hz(contour, FLAT_BINS, high) ||
+           (fabs(contour->sweep_hz) <= flat_hz(contour, SWEPT_BINS, high) &&
+            contour->bend_hz <= 2 * contour->bin_hz);
 }
 
 bool contour_settles(const struct contour *contour)
@@ -249,7 +252,8 @@ bool contour_settles(const struct contour *contour)
         low = fmin(low, contour->hz[i]);
         high = fmax(high, contour->hz[i]);
     }
-    return high - low <= flat_hz(contour, high);
+    const double drift = fabs((double)contour->hz[TRACE_POINTS - 1] - (double)contour->hz[TRACE_POINTS / 2]);
+    return high - low <= flat_hz(contour, FLAT_BINS, high) && drift <= flat_hz(contour, SETTLED_BINS, high);
 }
 
 void contour_trace(struct tracer *tracer, const struct path *path, bool whole, struct contour *out)

@@ -59,7 +59,7 @@ static enum rejection reject_contour(const struct judge *judge, enum trace_end e
         return REJECT_TOO_MANY;
     if (end == TRACE_STEADY_LINE || (contour_is_flat(c) && c->occupancy > LINE_OCCUPANCY))
         return REJECT_STEADY_LINE;
-    if (c->contrast < MIN_CONTRAST)
+    if (c->contrast < MIN_CONTRAST && c->sideband_hz <= 0) /* beside a line of a comb lie its others */
         return REJECT_BROADBAND;
     return is_tail(judge, c) ? REJECT_REVERBERATION : REJECT_COUNT;
 }

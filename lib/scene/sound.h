@@ -77,8 +77,10 @@ void sound_normalize_exposure(struct sound *sound);
 void sound_scale(struct sound *sound, double factor);
 
 /* A recorder's front end: parts of Gaussian shape that reach above the band of a sampling rate pass through a
- * Gaussian low-pass (standard deviation 0.2 of the rate), which leaves them Gaussian; other parts whose
- * frequency is above 0.45 of the rate are silenced, and noise whose band reaches 0.48. */
+ * low-pass, flat within 1 dB up to 0.36 of the rate and 25 dB down at half of it, whose response is a row of
+ * Gaussians: of each part there are then up to 7 (where a sound has no room for them: a single Gaussian,
+ * standard deviation 0.2 of the rate). Other parts whose frequency is above 0.45 of the rate are silenced,
+ * and noise whose band reaches 0.48. */
 void sound_limit_band(struct sound *sound, double rate_hz);
 
 /* Adds n values at times t0, t0 + dt ...; part k is multiplied by gain[k], and all by a factor that goes

@@ -31,6 +31,8 @@ static const struct row rows[] = {
     {"blue whale D call", "blue whale D call", 2000, 0.256, 15, 0.7, 0.4},
     {"sei whale downsweep", "sei whale downsweep", 2000, 0.256, 15, 0.5, 0.5},
     {"fin whale 40 Hz call", "fin whale 40 Hz call", 2000, 0.256, 15, 0.6, 0.4},
+    {"sei whale downsweep", "sei whale downsweep", 2000, 0.256, 27, 0.5, 0.5},
+    {"fin whale 40 Hz call", "fin whale 40 Hz call", 2000, 0.256, 27, 0.6, 0.4},
     {"right whale upcall", "right whale upcall", 8000, 0.128, 15, 0.7, 0.4},
     {"minke boing", "minke boing", 16000, 0.128, 20, 0.7, 0.4},
     {"killer whale call", "killer whale call", 48000, 0.0213, 20, 0.6, 0.6},
