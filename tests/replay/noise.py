@@ -47,8 +47,9 @@ def stated_rates():
     for path in glob.glob(ROOT + "/config/calls/*.cfg"):
         with open(path) as file:
             text = file.read()
-        rates[re.search(r'^name\s*=\s*"([^"]+)"', text, re.M).group(1)] = \
-            float(re.search(r"^false_per_hour\s*=\s*([0-9.eE+-]+)", text, re.M).group(1))
+        name = re.search(r'^name\s*=\s*"([^"]+)"', text, re.M)
+        if name:  # certainty.cfg holds no class
+            rates[name.group(1)] = float(re.search(r"^false_per_hour\s*=\s*([0-9.eE+-]+)", text, re.M).group(1))
     return rates
 
 

@@ -37,7 +37,8 @@ def classes():
         with open(os.path.join(ROOT, "config/calls", path)) as file:
             text = file.read()
         name, low_hz = (re.search(pattern, text, re.MULTILINE) for pattern in (r'^name\s*=\s*"([^"]+)"', r"^low_hz\s*=\s*([0-9.]+)"))
-        found[name.group(1)] = float(low_hz.group(1))
+        if name:  # certainty.cfg holds no class
+            found[name.group(1)] = float(low_hz.group(1))
     return found
 
 
