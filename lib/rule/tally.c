@@ -285,9 +285,12 @@ static void take_event(struct tally *tally, const struct outcome *outcome, const
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_SOURCE)
         tally_sounding_take(&tally->sounding, &event->as.note, outcome->watch_ns);
     else if (event->kind == EVENT_NOTE && event->as.note.kind == NOTE_JOB) {
+        const struct note *note = &event->as.note;
+        bool same = strcmp(note->job, tally->job) == 0, opens = strcmp(note->answer, "open") == 0;
+        if (!(opens && !same) && !(strcmp(note->answer, "close") == 0 && same))
+            return; /* the begin and end of a line, and what the watch finds without effect */
         say_all(tally, outcome->watch_ns, sink);
-        tally_begin_job(tally, strcmp(event->as.note.answer, "open") == 0 ? event->as.note.job : "",
-                        outcome->watch_ns);
+        tally_begin_job(tally, opens ? note->job : "", outcome->watch_ns);
     }
 }
 

@@ -76,7 +76,9 @@ void source_note(struct watch *watch, const struct note *note)
 void source_job(struct watch *watch, const struct note *note)
 {
     struct source *source = &watch->source;
-    if (strcmp(note->answer, "open") == 0) {
+    if (strcmp(note->answer, "open") == 0 && strcmp(source->job, note->job) == 0)
+        note_without_effect(watch, "job %.31s is open already", note->job);
+    else if (strcmp(note->answer, "open") == 0) {
         if (*source->job && strcmp(source->job, note->job) != 0) {
             struct why why;
             why_reset(&why, "", "job %.31s is opened while job %.31s is open: that one ends here", note->job,

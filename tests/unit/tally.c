@@ -88,13 +88,20 @@ static void give(struct tally *tally, struct said *said, struct event event, int
     assert_int_equal(tally_take(tally, &outcome, &sink), STATUS_OK);
 }
 
-static void open_job(struct tally *tally, struct said *said, int64_t at_ns)
+static void say_of_job(struct tally *tally, struct said *said, const char *answer, int64_t at_ns)
 {
     struct event event = {.kind = EVENT_NOTE};
     note_reset(&event.as.note, NOTE_JOB);
     snprintf(event.as.note.job, sizeof event.as.note.job, "pile 1");
-    snprintf(event.as.note.answer, sizeof event.as.note.answer, "open");
+    snprintf(event.as.note.answer, sizeof event.as.note.answer, "%s", answer);
     give(tally, said, event, at_ns);
+}
+
+/* The one before is over. */
+static void open_job(struct tally *tally, struct said *said, int64_t at_ns)
+{
+    say_of_job(tally, said, "close", at_ns);
+    say_of_job(tally, said, "open", at_ns);
 }
 
 static void give_phase(struct tally *tally, struct said *said, enum phase phase, int64_t at_ns)
@@ -206,6 +213,10 @@ static void each_job_begins_anew(void **state)
         open_job(tally, &said, (int64_t)(1 + 1000 * job) * TIME_NS_PER_S);
         for (int i = 0; i < 10; i++)
             give_blow(tally, &said, (int64_t)(10 + 1000 * job + i) * TIME_NS_PER_S, 150, IMPULSE_OURS);
+        /* a line begins and ends within its job, and a job that is open is not opened again */
+        static const char *const within[] = {"begin", "end", "open"};
+        for (int i = 0; i < 3; i++)
+            say_of_job(tally, &said, within[i], (int64_t)(30 + 1000 * job + i) * TIME_NS_PER_S);
         const struct outcome_sink sink = {take, &said};
         tally_finish(tally, (int64_t)(500 + 1000 * job) * TIME_NS_PER_S, &sink);
         assert_int_equal(said.source.n_impulses, 10);
