@@ -1,5 +1,6 @@
 /* The shipped permits; see permits.h. */
 #include "support/permits.h"
+#include "support/test.h"
 #include <dirent.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -58,4 +59,17 @@ bool test_load_permit(const char *id, struct permit *out)
         printf("# %s: %s\n", path, problems.lines.data ? problems.lines.data : "not read");
     problems_destroy(&problems);
     return status == STATUS_OK;
+}
+
+void test_permit_states(const struct permit *permit, const char *key, const char *text, enum value_mark mark)
+{
+    for (uint32_t i = 0; i < permit->n_values; i++) {
+        const struct permit_value *value = &permit->values[i];
+        if (strcmp(value->key, key) != 0)
+            continue;
+        assert_string_equal(value->text, text);
+        assert_int_equal(value->mark, mark);
+        return;
+    }
+    fail_msg("%s has no value %s", permit->id, key);
 }

@@ -17,4 +17,7 @@ bool test_permit_fills(const char *id, struct permit_fills *out);
 /* Loads config/permits/ID.cfg with those values; prints what is wrong and gives false where it cannot. */
 bool test_load_permit(const char *id, struct permit *out);
 
+/* Fails the test where the value of that key has another text or another mark, or there is none. */
+void test_permit_states(const struct permit *permit, const char *key, const char *text, enum value_mark mark);
+
 #endif

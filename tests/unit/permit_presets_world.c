@@ -15,18 +15,9 @@ static void load(const char *id)
     assert_true(test_load_permit(id, &permit));
 }
 
-/* The value of a key has this text and this mark. */
 static void states(const char *key, const char *text, enum value_mark mark)
 {
-    for (uint32_t i = 0; i < permit.n_values; i++) {
-        const struct permit_value *value = &permit.values[i];
-        if (strcmp(value->key, key) != 0)
-            continue;
-        assert_string_equal(value->text, text);
-        assert_int_equal(value->mark, mark);
-        return;
-    }
-    fail_msg("%s has no value %s", permit.id, key);
+    test_permit_states(&permit, key, text, mark);
 }
 
 static bool names(const struct permit_zone *zone, const char *species)
