@@ -179,6 +179,10 @@ static void why_pre_watch(const struct watch *watch, struct why *why)
         return;
     else if (watch->phase == PHASE_DETERRENT)
         why_reset(why, watch->permit->deterrent.clause, "the deterrent has ended, and the pre-watch goes on");
+    else if (watch->phase == PHASE_READY && effort_kept(watch, &missing) &&
+             watch->effort.credit_ns >= time_from_minutes(watch->permit->pre_watches[0].minutes))
+        why_reset(why, watch->permit->pre_watch_clause, "so deep a pre-watch of %g min is needed",
+                  effort_pre_watch(watch)->minutes);
     else if (watch->phase == PHASE_READY && effort_kept(watch, &missing))
         why_reset(why, watch->permit->pre_watch_clause,
                   "part of the pre-watch was not kept or not heard: it is no longer complete");
