@@ -73,15 +73,18 @@ export function say(text, wrong = false) {
   place.classList.toggle("wrong", wrong);
 }
 
+/** The inputs of a form; form.elements would be the input of that name where there is one. */
+const named = (form) => [...form.querySelectorAll("input[name], select[name]")];
+
 /** Sends a note and says what became of it; returns whether it was taken. */
 export async function send(note, form) {
-  for (const input of form ? form.elements : []) input.removeAttribute("aria-invalid");
+  for (const input of form ? named(form) : []) input.removeAttribute("aria-invalid");
   const answer = await post(note);
   if (answer.id) {
     say("Entered: " + note.kind + " (" + answer.id + ").");
     return true;
   }
-  const input = form && answer.field && form.elements[answer.field];
+  const input = form && answer.field && named(form).find((one) => one.name === answer.field);
   if (input) {
     input.setAttribute("aria-invalid", "true");
     input.focus();
@@ -107,7 +110,7 @@ function nextTime(text) {
 /** The filled fields of a form, as numbers, flags and texts. */
 export function values(form) {
   const note = {};
-  for (const input of form.elements) {
+  for (const input of named(form)) {
     if (!input.name || (input.type !== "checkbox" && input.value.trim() === "") || (input.type === "checkbox" && !input.checked)) continue;
     note[input.name] = input.type === "checkbox" ? true : input.type === "time" ? nextTime(input.value) : input.type === "number" ? Number(input.value) : input.value.trim();
   }
