@@ -114,5 +114,4 @@ static bool show(const struct watch *watch, struct watch_timer *timer)
     return true;
 }
 
-const struct condition condition_outage = {
-    .finding = "acoustic outage too long", .asks = asks, .due_ns = due_ns, .settle = settle, .show = show};
+const struct condition condition_outage = {.asks = asks, .due_ns = due_ns, .settle = settle, .show = show};

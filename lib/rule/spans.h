@@ -10,7 +10,8 @@ struct span {
     int64_t start_ns, end_ns;
 };
 
-/* When it is full the oldest stretch is forgotten: rules look back seconds, not hours. */
+/* When it is full the oldest stretch is forgotten: sums over 24 h (outages, watch hours, good watch) miss
+ * what came before the newest SPANS_MAX stretches. */
 struct spans {
     uint32_t n;
     struct span all[SPANS_MAX];
