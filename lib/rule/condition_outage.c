@@ -17,11 +17,10 @@ static int64_t since_ns(const struct watch *watch)
 /* Of the last 24 h, this outage included. */
 static int64_t in_a_day_ns(const struct watch *watch)
 {
-    struct spans all = watch->outage.past, day = {0};
+    struct spans all = watch->outage.past;
     if (since_ns(watch) >= 0)
         spans_add(&all, since_ns(watch), watch->now_ns);
-    spans_add(&day, watch->now_ns > DAY_NS ? watch->now_ns - DAY_NS : 0, watch->now_ns);
-    spans_common(&all, &day, &all);
+    spans_forget_before(&all, watch->now_ns - DAY_NS);
     return spans_total_ns(&all);
 }
 
@@ -82,14 +81,15 @@ static int64_t due_ns(const struct watch *watch)
     return due;
 }
 
+/* Outages count whether or not the permit bounds them: another may hold from tomorrow on. */
 static void settle(struct watch *watch)
 {
     struct outage_state *state = &watch->outage;
-    bool out = watch->permit->outage.stated && source_sounds(watch->phase) &&
-               (effort_deaf(watch) || !effort_kept_as(watch, "acoustic"));
+    bool out = source_sounds(watch->phase) && (effort_deaf(watch) || !effort_kept_as(watch, "acoustic"));
     if (out && state->since_ns < 0)
         state->since_ns = watch->now_ns;
     if (!out && state->since_ns >= 0) {
+        spans_forget_before(&state->past, watch->now_ns - DAY_NS);
         spans_add(&state->past, state->since_ns, watch->now_ns);
         state->since_ns = -1;
     }

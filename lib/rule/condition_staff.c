@@ -20,7 +20,23 @@ static struct shift *shift_of(struct watch *watch, const char *name)
     return NULL;
 }
 
-/* Forgets who went off first where there is no room. */
+static int64_t in_a_day_ns(const struct shift *shift, int64_t now_ns)
+{
+    struct spans all = shift->past;
+    if (shift->on_ns >= 0)
+        spans_add(&all, shift->on_ns, now_ns);
+    spans_forget_before(&all, now_ns - DAY_NS);
+    return spans_total_ns(&all);
+}
+
+/* Of two who are off watch, whose hours may rather be forgotten: fewer in 24 h, or off before. */
+static bool matters_less(const struct shift *a, const struct shift *b, int64_t now_ns)
+{
+    int64_t a_ns = in_a_day_ns(a, now_ns), b_ns = in_a_day_ns(b, now_ns);
+    return a_ns < b_ns || (a_ns == b_ns && a->off_ns < b->off_ns);
+}
+
+/* Where there is no room, who kept the least watch in 24 h is forgotten. */
 static struct shift *new_shift(struct watch *watch, const char *name)
 {
     struct staff_state *staff = &watch->staff;
@@ -29,25 +45,15 @@ static struct shift *new_shift(struct watch *watch, const char *name)
         place = STAFF_MAX;
         for (uint32_t i = 0; i < STAFF_MAX; i++)
             if (staff->all[i].on_ns < 0 &&
-                (place == STAFF_MAX || staff->all[i].off_ns < staff->all[place].off_ns))
+                (place == STAFF_MAX || matters_less(&staff->all[i], &staff->all[place], watch->now_ns)))
                 place = i;
         if (place == STAFF_MAX)
             return NULL;
     } else
         staff->n++;
-    staff->all[place] = (struct shift){.on_ns = -1, .off_ns = -1};
+    staff->all[place] = (struct shift){.on_ns = -1, .off_ns = -1, .past.full = SPANS_FOLD_LATER};
     memmove(staff->all[place].name, name, strnlen(name, NOTE_NAME_SIZE - 1));
     return &staff->all[place];
-}
-
-static int64_t in_a_day_ns(const struct shift *shift, int64_t now_ns)
-{
-    struct spans all = shift->past, day = {0};
-    if (shift->on_ns >= 0)
-        spans_add(&all, shift->on_ns, now_ns);
-    spans_add(&day, now_ns > DAY_NS ? now_ns - DAY_NS : 0, now_ns);
-    spans_common(&all, &day, &all);
-    return spans_total_ns(&all);
 }
 
 static void say(struct watch *watch, const struct shift *shift, const char *format, double is, double allowed)
@@ -85,6 +91,7 @@ static void go_off(struct watch *watch, const char *name)
     struct shift *shift = shift_of(watch, name);
     if (!shift || shift->on_ns < 0 || effort_on_watch(watch, name))
         return;
+    spans_forget_before(&shift->past, watch->now_ns - DAY_NS);
     spans_add(&shift->past, shift->on_ns, watch->now_ns);
     shift->stretch_ns += watch->now_ns - shift->on_ns;
     shift->full = shift->stretch_ns >= hours_ns(watch->permit->staff.longest_hours);
@@ -92,12 +99,11 @@ static void go_off(struct watch *watch, const char *name)
     shift->on_ns = -1;
 }
 
-/* After signing on and off has been taken. */
+/* After signing on and off has been taken. Hours count whether or not the permit bounds them: another may
+ * hold from tomorrow on. */
 static void settle(struct watch *watch)
 {
     const struct permit_staff *rule = &watch->permit->staff;
-    if (!*rule->clause)
-        return;
     for (uint32_t i = 0; i < watch->effort.n_people; i++)
         if (strcmp(watch->effort.people[i].watch, "crew") != 0)
             come_on(watch, watch->effort.people[i].name);
@@ -124,16 +130,16 @@ static int64_t due_ns(const struct watch *watch)
 {
     const struct permit_staff *rule = &watch->permit->staff;
     int64_t due = INT64_MAX;
-    for (uint32_t i = 0; *rule->clause && i < watch->staff.n; i++) {
+    for (uint32_t i = 0; i < watch->staff.n; i++) {
         const struct shift *shift = &watch->staff.all[i];
         if (shift->on_ns < 0)
             continue;
         int64_t long_ns = shift->on_ns - shift->stretch_ns + hours_ns(rule->longest_hours) + TIME_NS_PER_US;
         int64_t left = hours_ns(rule->day_hours) - in_a_day_ns(shift, watch->now_ns);
-        int64_t day_ns = watch->now_ns + (left > 0 ? left : 0) + TIME_NS_PER_US;
+        int64_t day_ns = watch->now_ns + left + TIME_NS_PER_US;
         if (!shift->said_long && long_ns > watch->now_ns && long_ns < due)
             due = long_ns;
-        if (!shift->said_day && left > 0 && day_ns < due)
+        if (!shift->said_day && left >= 0 && day_ns < due)
             due = day_ns;
     }
     return due;

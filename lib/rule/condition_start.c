@@ -47,9 +47,7 @@ static bool lacks_history(const struct watch *watch, const char *poor, struct wh
     struct spans good = state->good;
     if (state->good_since_ns >= 0)
         spans_add(&good, state->good_since_ns, watch->now_ns);
-    struct spans window = {0};
-    spans_add(&window, since_ns > 0 ? since_ns : 0, watch->now_ns);
-    spans_common(&good, &window, &good);
+    spans_forget_before(&good, since_ns);
     double minutes = time_to_s(spans_total_ns(&good)) / 60;
     if (rule->good_watch_minutes > 0 && minutes < rule->good_watch_minutes)
         why_reset(why, rule->clause,
@@ -112,8 +110,11 @@ static bool holds(const struct watch *watch, struct why *why, int64_t *until_ns)
 void start_end_stretch(struct watch *watch)
 {
     struct start_state *state = &watch->start;
-    if (state->good_since_ns >= 0)
-        spans_add(&state->good, state->good_since_ns, watch->now_ns);
+    if (state->good_since_ns < 0)
+        return;
+    int64_t within_ns = time_from_s(watch->permit->start.good_watch_within_hours * 3600);
+    spans_forget_before(&state->good, watch->now_ns - within_ns);
+    spans_add(&state->good, state->good_since_ns, watch->now_ns);
     state->good_since_ns = -1;
 }
 

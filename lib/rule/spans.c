@@ -2,10 +2,33 @@
 #include "rule/spans.h"
 #include <string.h>
 
+/* Makes room for one that stands behind all others, and takes it. */
+static void fold_with(struct spans *spans, int64_t start_ns, int64_t end_ns)
+{
+    struct span all[SPANS_MAX + 1];
+    memcpy(all, spans->all, sizeof spans->all);
+    all[SPANS_MAX] = (struct span){start_ns, end_ns};
+    uint32_t at = 0;
+    for (uint32_t i = 1; i < SPANS_MAX; i++)
+        if (all[i + 1].end_ns - all[i].start_ns < all[at + 1].end_ns - all[at].start_ns)
+            at = i;
+    int64_t rest_ns = all[at + 1].start_ns - all[at].end_ns;
+    if (spans->full == SPANS_FOLD_LATER)
+        all[at + 1].start_ns = all[at].start_ns + rest_ns;
+    else
+        all[at + 1] = (struct span){all[at].start_ns, all[at + 1].end_ns - rest_ns};
+    memmove(all + at, all + at + 1, (SPANS_MAX - at) * sizeof all[0]);
+    memcpy(spans->all, all, sizeof spans->all);
+}
+
 static void append(struct spans *spans, int64_t start_ns, int64_t end_ns)
 {
     if (end_ns <= start_ns)
         return;
+    if (spans->n == SPANS_MAX && spans->full != SPANS_FORGET) {
+        fold_with(spans, start_ns, end_ns);
+        return;
+    }
     if (spans->n == SPANS_MAX)
         memmove(spans->all, spans->all + 1, --spans->n * sizeof spans->all[0]);
     spans->all[spans->n++] = (struct span){start_ns, end_ns};
@@ -31,7 +54,7 @@ void spans_add(struct spans *spans, int64_t start_ns, int64_t end_ns)
 
 void spans_common(const struct spans *a, const struct spans *b, struct spans *out)
 {
-    struct spans common = {0};
+    struct spans common = {.full = out->full};
     for (uint32_t i = 0, k = 0; i < a->n && k < b->n;) {
         const struct span *x = &a->all[i], *y = &b->all[k];
         append(&common, x->start_ns > y->start_ns ? x->start_ns : y->start_ns,
@@ -46,7 +69,7 @@ void spans_common(const struct spans *a, const struct spans *b, struct spans *ou
 
 void spans_without(const struct spans *a, const struct spans *b, struct spans *out)
 {
-    struct spans rest = {0};
+    struct spans rest = {.full = out->full};
     for (uint32_t i = 0; i < a->n; i++) {
         int64_t from = a->all[i].start_ns;
         for (uint32_t k = 0; k < b->n; k++) {
@@ -58,6 +81,17 @@ void spans_without(const struct spans *a, const struct spans *b, struct spans *o
         append(&rest, from, a->all[i].end_ns);
     }
     *out = rest;
+}
+
+void spans_forget_before(struct spans *spans, int64_t time_ns)
+{
+    uint32_t gone = 0;
+    while (gone < spans->n && spans->all[gone].end_ns <= time_ns)
+        gone++;
+    spans->n -= gone;
+    memmove(spans->all, spans->all + gone, spans->n * sizeof spans->all[0]);
+    if (spans->n > 0 && spans->all[0].start_ns < time_ns)
+        spans->all[0].start_ns = time_ns;
 }
 
 int64_t spans_total_ns(const struct spans *spans)

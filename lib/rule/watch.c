@@ -32,6 +32,8 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->run = 1;
     watch->phase = PHASE_OFF;
     watch->effort.hole_ns = watch->let_go_ns = -1;
+    watch->start.good.full = SPANS_FOLD_EARLIER;
+    watch->outage.past.full = SPANS_FOLD_LATER;
     watch->start.good_since_ns = watch->outage.since_ns = watch->outage.heard_ns = -1;
     watch->plan.planned_ns = watch->stop.passed.since_ns = watch->stop.acknowledged.since_ns = -1;
     watch->turn.last_ns = watch->turn.soft_ns = -1;

@@ -110,7 +110,7 @@ struct quieting_state {
     char id[FLOW_ID_SIZE];
 };
 
-#define START_MAX_ORDERS 16
+#define START_MAX_ORDERS 100 /* as many as a permit can speak of */
 
 /* condition_start.c */
 struct start_state {

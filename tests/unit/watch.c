@@ -1,67 +1,15 @@
-/* lib/rule: stretches of time against a plain bitmap, the table of contacts, and the watch at its edges. What
- * the watch does is told in tests/scenario. */
+/* lib/rule: the table of contacts, and the watch at its edges. What the watch does is told in tests/scenario.
+ */
 #include "support/test.h"
 
 #include "base/random.h"
 #include "base/time.h"
 #include "rule/contact.h"
-#include "rule/spans.h"
 #include "rule/watch.h"
 #include "settings/permit.h"
 #include <math.h>
 
 #define SECOND TIME_NS_PER_S
-
-/* ---- spans: each stretch as bits of 64 steps */
-static uint64_t bits_of(const struct spans *spans)
-{
-    uint64_t bits = 0;
-    for (uint32_t i = 0; i < spans->n; i++) {
-        assert_true(spans->all[i].start_ns < spans->all[i].end_ns);
-        assert_true(i == 0 || spans->all[i - 1].end_ns <= spans->all[i].start_ns);
-        for (int64_t k = spans->all[i].start_ns; k < spans->all[i].end_ns; k++)
-            bits |= UINT64_C(1) << k;
-    }
-    return bits;
-}
-
-static void spans_agree_with_bits(void **state)
-{
-    (void)state;
-    struct random random;
-    random_reset(&random, 5);
-    for (int trial = 0; trial < 5000; trial++) {
-        struct spans a = {0}, b = {0}, out;
-        uint64_t bits_a = 0, bits_b = 0;
-        for (int i = 0; i < 8; i++) {
-            int64_t start = (int64_t)(random_bits(&random) % 60),
-                    end = start + (int64_t)(random_bits(&random) % 5);
-            struct spans *into = i % 2 ? &a : &b;
-            spans_add(into, start, end);
-            for (int64_t k = start; k < end; k++)
-                *(i % 2 ? &bits_a : &bits_b) |= UINT64_C(1) << k;
-        }
-        assert_true(bits_of(&a) == bits_a && bits_of(&b) == bits_b);
-        assert_int_equal(spans_total_ns(&a), __builtin_popcountll(bits_a));
-        spans_common(&a, &b, &out);
-        assert_true(bits_of(&out) == (bits_a & bits_b));
-        spans_without(&a, &b, &out);
-        assert_true(bits_of(&out) == (bits_a & ~bits_b));
-        spans_common(&a, &b, &a); /* in place */
-        assert_true(bits_of(&a) == (bits_a & bits_b));
-    }
-}
-
-static void full_spans_forget_the_oldest(void **state)
-{
-    (void)state;
-    struct spans spans = {0};
-    for (int64_t i = 0; i < SPANS_MAX + 3; i++)
-        spans_add(&spans, 10 * i, 10 * i + 5);
-    assert_int_equal(spans.n, SPANS_MAX);
-    assert_int_equal(spans.all[0].start_ns, 30);
-    assert_int_equal(spans.all[SPANS_MAX - 1].start_ns, 10 * (SPANS_MAX + 2));
-}
 
 /* ---- contacts */
 static void open_contacts_are_never_forgotten(void **state)
@@ -533,8 +481,6 @@ static void impulses_carry_their_range(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(spans_agree_with_bits),
-        cmocka_unit_test(full_spans_forget_the_oldest),
         cmocka_unit_test(open_contacts_are_never_forgotten),
         cmocka_unit_test(evidence_fades),
         cmocka_unit_test_setup_teardown(bad_setups_and_times_are_refused, begin, end),
