@@ -117,11 +117,11 @@ static void push(struct watcher *watcher, struct event *event)
     keep_status(watcher, watch_push(watcher->setup.watch, event, &sink));
 }
 
-/* What people did not say, or said of the future, happened when it became known. */
+/* What people did not say happened when it became known; a time ahead stays as it was said, and is found. */
 static void date_note(struct note *note, int64_t known_ns)
 {
     note->known_ns = known_ns;
-    if (note->occurred_ns == 0 || note->occurred_ns > known_ns)
+    if (note->occurred_ns == 0)
         note->occurred_ns = known_ns;
 }
 

@@ -94,7 +94,8 @@ static const char notes_sql[] =
     PIECE(KNOWN("%.0f m from the source", "distance_m")) PIECE(KNOWN("bearing %.0f", "bearing_deg"))
     PIECE("CASE WHEN leaving THEN 'leaving' END") PIECE(KNOWN("sea state %g", "sea_state"))
     PIECE(KNOWN("visibility %.0f m", "visibility_m"))
-    PIECE("CASE WHEN known_s - occurred_s >= 1 THEN printf('(%.0f s before)', known_s - occurred_s) END")
+    PIECE("CASE WHEN known_s - occurred_s >= 1 THEN printf('(%.0f s before)', known_s - occurred_s)"
+          " WHEN occurred_s - known_s >= 1 THEN printf('(%.0f s ahead)', occurred_s - known_s) END")
     "coalesce(text, '')) FROM note ORDER BY seq";
 
 static const char impulses_sql[] =

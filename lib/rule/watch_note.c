@@ -50,7 +50,8 @@ static void take_position(struct watch *watch, const struct note *note)
                                       .course_deg = NAN,
                                       .speed_m_s = NAN,
                                       .accuracy_m = NAN,
-                                      .occurred_ns = note->occurred_ns};
+                                      .occurred_ns = note->occurred_ns < watch->now_ns ? note->occurred_ns
+                                                                                       : watch->now_ns};
     ranges_take(&watch->ranges, &position);
 }
 
