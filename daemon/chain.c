@@ -333,8 +333,16 @@ static enum status start_pages(struct chain *chain, struct problems *problems)
 {
     if (chain->setup.scan)
         return STATUS_OK;
-    const struct http_setup setup = {
-        .address = chain->setup.site->address, .port = chain->setup.site->port, .board = chain->board};
+    const struct site *site = chain->setup.site;
+    struct http_setup setup = {.address = site->address,
+                               .port = site->port,
+                               .board = chain->board,
+                               .n_hosts = site->n_hosts,
+                               .accounts = site->accounts,
+                               .certificate = site->certificate,
+                               .key = site->key};
+    for (uint32_t i = 0; i < site->n_hosts; i++)
+        setup.hosts[i] = site->hosts[i];
     const struct http_callbacks callbacks = {take_note, chain};
     return http_start(&setup, &callbacks, problems, &chain->http);
 }

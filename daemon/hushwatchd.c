@@ -57,11 +57,15 @@ static void feed_watchdog(struct chain *chain)
 }
 
 /* Waits for a signal to end; the chain works in its own threads. */
-static void keep_watch(struct chain *chain, const sigset_t *signals)
+static void keep_watch(const struct site *site, struct chain *chain, const sigset_t *signals)
 {
     const struct timespec second = {.tv_sec = 1};
-    printf("observer: http://127.0.0.1:%u/\ncrew:     http://127.0.0.1:%u/crew?station=crew\n",
-           chain_get_port(chain), chain_get_port(chain));
+    bool any = strcmp(site->address, "0.0.0.0") == 0 || strcmp(site->address, "::") == 0;
+    bool brackets = !any && strchr(site->address, ':');
+    char base[96];
+    snprintf(base, sizeof base, "http%s://%s%s%s:%u/", *site->certificate ? "s" : "", brackets ? "[" : "",
+             any ? "127.0.0.1" : site->address, brackets ? "]" : "", chain_get_port(chain));
+    printf("observer: %s\ncrew:     %screw?station=crew\n", base, base);
     fflush(stdout);
     sd_notify(0, "READY=1\nSTATUS=keeping watch");
     while (sigtimedwait(signals, NULL, &second) < 0)
@@ -87,7 +91,7 @@ static int run(struct site *site, struct problems *problems)
     if (problems->lines.data)
         fputs(problems->lines.data, stderr);
     if (status == STATUS_OK) {
-        keep_watch(chain, &signals);
+        keep_watch(site, chain, &signals);
         status = chain_stop(chain, &lost);
     } else if (problems->count == 0)
         fprintf(stderr, "hushwatchd: %s\n", status_text(status));

@@ -111,6 +111,7 @@ export const link = {
   watchS: 0, watchAt: 0, // watch time, and when it last moved
   committedS: null, committedAt: 0, // how far the ledger holds everything, and when that last moved
   everHeard: false,
+  signedOut: false, // the session is over: another sign-in is needed
 };
 let source = null;
 let listener = () => {};
@@ -118,9 +119,17 @@ let listener = () => {};
 function take(watchS, committedS) {
   const now = performance.now();
   link.heardAt = now;
+  link.signedOut = false;
+  showDoor();
   link.everHeard = true;
   if (watchS !== link.watchS || !link.watchAt) [link.watchS, link.watchAt] = [watchS, now];
   if (committedS !== link.committedS || !link.committedAt) [link.committedS, link.committedAt] = [committedS, now];
+}
+/** A way to the sign-in and back here, for as long as one is needed. */
+function showDoor() {
+  const old = $("to_sign_in");
+  if (!link.signedOut) old?.remove();
+  else if (!old) document.querySelector("header").append(el("a", { id: "to_sign_in", href: "/sign-in#" + location.pathname + location.search, text: "Sign in" }));
 }
 function open() {
   source = new EventSource("/api/events");
@@ -135,8 +144,12 @@ function open() {
     take(beat.watch_s, beat.committed_s);
     listener();
   });
-  source.onerror = () => {
-    if (source.readyState === EventSource.CLOSED) setTimeout(open, 1000);
+  source.onerror = async () => {
+    if (source.readyState !== EventSource.CLOSED) return;
+    const answer = await fetch("/api/who").catch(() => null);
+    link.signedOut = Boolean(answer && answer.status === 401);
+    showDoor();
+    setTimeout(open, 1000);
   };
 }
 /** Opens the one connection; calls `draw` on every event and at least five times a second. */
@@ -200,7 +213,8 @@ export function faults() {
   const still = now - link.watchAt > LATE_MS;
   if (silent) {
     const since = utc(link.watchS + (link.heardAt - link.watchAt) / 1000);
-    return [{ code: "contact", title: "NO CONTACT since " + since + " UTC", text: "This page no longer hears from the daemon. It tries again by itself.", grave: true }];
+    const text = link.signedOut ? "This page is signed out." : "This page no longer hears from the daemon. It tries again by itself.";
+    return [{ code: "contact", title: "NO CONTACT since " + since + " UTC", text, grave: true }];
   }
   if (still) said.push({ code: "watch", title: "CANNOT HEAR", text: "The watch stands still since " + utc(link.watchS) + " UTC.", grave: true });
   const state = link.state;

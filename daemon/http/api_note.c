@@ -2,6 +2,7 @@
 #include "base/text.h"
 #include "http/note_json.h"
 #include "http/routes.h"
+#include <stdio.h>
 
 /* The watch's answer to a note that was with it. */
 static enum MHD_Result answer_taken(struct request *request)
@@ -32,6 +33,10 @@ enum MHD_Result api_note(struct request *request)
     if (note_from_json(request->body, request->body_length, &item->note, &refusal) != STATUS_OK)
         return http_refuse(request->connection, MHD_HTTP_BAD_REQUEST, refusal.error, refusal.field,
                            refusal.allowed);
+    if (!visitor_may_enter(request->visitor.role, &item->note))
+        return http_refuse(request->connection, MHD_HTTP_FORBIDDEN, "your account may not enter this", "kind",
+                           NULL);
+    snprintf(item->note.account, sizeof item->note.account, "%s", request->visitor.account);
     item->connection = request->connection;
     request->submitted = true;
     if (desk_submit(request->http->desk, item) == STATUS_OK)

@@ -1,4 +1,4 @@
-/* The note desk: a short queue and its thread. */
+/* A desk: a short queue and its thread. */
 #include "http/desk.h"
 #include <pthread.h>
 #include <stdbool.h>
@@ -9,12 +9,13 @@ struct desk {
     pthread_cond_t changed;
     pthread_t thread;
     bool has_thread, stopping;
-    struct http_callbacks callbacks;
+    desk_work work;
+    void *context;
     struct desk_item *first, **end;
     uint32_t n_waiting;
 };
 
-static void *work(void *context)
+static void *serve(void *context)
 {
     struct desk *desk = context;
     pthread_mutex_lock(&desk->lock);
@@ -29,8 +30,7 @@ static void *work(void *context)
             desk->end = &desk->first;
         bool refuse = desk->stopping;
         pthread_mutex_unlock(&desk->lock);
-        item->status =
-            refuse ? STATUS_BUSY : desk->callbacks.take_note(desk->callbacks.context, &item->note, item->id);
+        item->status = refuse ? STATUS_BUSY : desk->work(desk->context, item);
         pthread_mutex_lock(&desk->lock);
         desk->n_waiting--;
         MHD_resume_connection(item->connection); /* from here on the item may be gone */
@@ -39,16 +39,17 @@ static void *work(void *context)
     return NULL;
 }
 
-enum status desk_create(const struct http_callbacks *callbacks, struct desk **out)
+enum status desk_create(desk_work work, void *context, struct desk **out)
 {
     struct desk *desk = calloc(1, sizeof *desk);
     if (!desk)
         return STATUS_NO_MEMORY;
-    desk->callbacks = *callbacks;
+    desk->work = work;
+    desk->context = context;
     desk->end = &desk->first;
     pthread_mutex_init(&desk->lock, NULL);
     pthread_cond_init(&desk->changed, NULL);
-    if (pthread_create(&desk->thread, NULL, work, desk) != 0) {
+    if (pthread_create(&desk->thread, NULL, serve, desk) != 0) {
         desk_destroy(desk);
         return STATUS_SYSTEM;
     }

@@ -3,13 +3,24 @@
 #include "base/text.h"
 #include "base/time.h"
 #include <arpa/inet.h>
+#include <ctype.h>
+#include <netinet/in.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 #include <strings.h>
+#include <sys/socket.h>
 
 static const char *header(struct MHD_Connection *connection, const char *name)
 {
     return MHD_lookup_connection_value(connection, MHD_HEADER_KIND, name);
+}
+
+static int socket_of(struct MHD_Connection *connection)
+{
+    const union MHD_ConnectionInfo *info =
+        MHD_get_connection_info(connection, MHD_CONNECTION_INFO_CONNECTION_FD);
+    return info ? info->connect_fd : -1;
 }
 
 void http_add_headers(struct MHD_Response *response)
@@ -71,8 +82,26 @@ enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, co
     return result;
 }
 
-/* Whether a Host header names this machine's loopback or a configured host. */
-static bool is_host_allowed(const struct http *http, const char *host)
+/* Whether a name is the address by which the connection came in: what a rebound name cannot be. */
+static bool is_own_address(struct MHD_Connection *connection, const char *name)
+{
+    struct sockaddr_storage own;
+    socklen_t size = sizeof own;
+    char text[INET6_ADDRSTRLEN + 2] = "";
+    if (getsockname(socket_of(connection), (struct sockaddr *)&own, &size) != 0)
+        return false;
+    if (own.ss_family == AF_INET)
+        inet_ntop(AF_INET, &((struct sockaddr_in *)&own)->sin_addr, text, sizeof text);
+    else if (own.ss_family == AF_INET6) {
+        text[0] = '[';
+        inet_ntop(AF_INET6, &((struct sockaddr_in6 *)&own)->sin6_addr, text + 1, sizeof text - 2);
+        strcat(text, "]");
+    }
+    return strcasecmp(name, text) == 0;
+}
+
+/* Whether a Host header names this machine or a configured host. */
+static bool is_host_allowed(const struct http *http, struct MHD_Connection *connection, const char *host)
 {
     char name[NOTE_NAME_SIZE];
     size_t length = host[0] == '[' ? strcspn(host, "]") + 1 : strcspn(host, ":");
@@ -88,6 +117,8 @@ static bool is_host_allowed(const struct http *http, const char *host)
         return true;
     if (inet_pton(AF_INET, name, &address) == 1 && ntohl(address.s_addr) >> 24 == 127)
         return true;
+    if (is_own_address(connection, name))
+        return true;
     for (uint32_t i = 0; i < http->n_hosts; i++)
         if (strcasecmp(name, http->hosts[i]) == 0)
             return true;
@@ -95,11 +126,12 @@ static bool is_host_allowed(const struct http *http, const char *host)
 }
 
 /* A write must come from our own page, or from no page at all (a tool on this machine). */
-static bool same_origin(struct MHD_Connection *connection, const char *host)
+static bool same_origin(const struct http *http, struct MHD_Connection *connection, const char *host)
 {
     const char *origin = header(connection, "Origin");
+    const char *scheme = http->secure ? "https://" : "http://";
     if (origin)
-        return strncmp(origin, "http://", 7) == 0 && strcasecmp(origin + 7, host) == 0;
+        return strncmp(origin, scheme, strlen(scheme)) == 0 && strcasecmp(origin + strlen(scheme), host) == 0;
     const char *site = header(connection, "Sec-Fetch-Site");
     return !site || strcmp(site, "same-origin") == 0 || strcmp(site, "none") == 0;
 }
@@ -119,7 +151,7 @@ static unsigned wrong(const struct http *http, struct MHD_Connection *connection
     bool post = strcmp(method, "POST") == 0;
     const char *host = header(connection, "Host");
     *out_why = "this server answers only to its own name";
-    if (!host || !is_host_allowed(http, host))
+    if (!host || !is_host_allowed(http, connection, host))
         return MHD_HTTP_MISDIRECTED_REQUEST;
     *out_why = "only GET and POST";
     if (!post && strcmp(method, "GET") != 0)
@@ -131,7 +163,7 @@ static unsigned wrong(const struct http *http, struct MHD_Connection *connection
     if (!route)
         return MHD_HTTP_METHOD_NOT_ALLOWED;
     *out_why = "only this server's own pages may write";
-    if (post && !same_origin(connection, host))
+    if (post && !same_origin(http, connection, host))
         return MHD_HTTP_FORBIDDEN;
     *out_why = "a write needs Content-Type application/json";
     if (post && !is_json(connection))
@@ -143,11 +175,34 @@ static unsigned wrong(const struct http *http, struct MHD_Connection *connection
     return 0;
 }
 
-static int socket_of(struct MHD_Connection *connection)
+/* Where a page sends a stranger: the sign-in, with the way back, of which the station is part. */
+static void write_way(struct MHD_Connection *connection, const struct web_file *file, char *out, size_t size)
 {
-    const union MHD_ConnectionInfo *info =
-        MHD_get_connection_info(connection, MHD_CONNECTION_INFO_CONNECTION_FD);
-    return info ? info->connect_fd : -1;
+    const char *station = MHD_lookup_connection_value(connection, MHD_GET_ARGUMENT_KIND, "station");
+    const char *name = strcmp(file->name, "index.html") == 0 ? "" : file->name;
+    size_t n = (size_t)snprintf(out, size, "/sign-in#/%.*s%s", (int)strcspn(name, "."), name,
+                                station ? "?station=" : "");
+    for (; station && *station && n + 4 < size; station++)
+        n += (size_t)snprintf(out + n, size - n, isalnum((unsigned char)*station) ? "%c" : "%%%02X",
+                              (unsigned char)*station);
+}
+
+/* A page sends a stranger to the sign-in; an endpoint says that one is needed. */
+static enum MHD_Result turn_away(struct MHD_Connection *connection, const struct web_file *file)
+{
+    if (!file)
+        return http_refuse(connection, MHD_HTTP_UNAUTHORIZED, "sign in first", NULL, NULL);
+    static char nothing[] = "";
+    struct MHD_Response *response = MHD_create_response_from_buffer(0, nothing, MHD_RESPMEM_PERSISTENT);
+    if (!response)
+        return MHD_NO;
+    http_add_headers(response);
+    char way[512];
+    write_way(connection, file, way, sizeof way);
+    MHD_add_response_header(response, "Location", way);
+    enum MHD_Result result = MHD_queue_response(connection, MHD_HTTP_SEE_OTHER, response);
+    MHD_destroy_response(response);
+    return result;
 }
 
 static enum MHD_Result begin(struct http *http, struct MHD_Connection *connection, const char *url,
@@ -160,6 +215,10 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     unsigned code = wrong(http, connection, method, route, exists, &why);
     if (code != 0)
         return http_refuse(connection, code, why, NULL, NULL);
+    struct visitor visitor;
+    visitors_look(http->visitors, connection, &visitor);
+    if (visitor.role == ROLE_NONE && !http_is_open(route, file))
+        return turn_away(connection, file);
     struct request *request = malloc(sizeof *request);
     if (!request)
         return MHD_NO;
@@ -167,6 +226,7 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     request->connection = connection;
     request->route = route;
     request->file = file;
+    request->visitor = visitor;
     request->too_large = request->submitted = false;
     request->body_length = 0;
     *request_context = request;
@@ -215,8 +275,8 @@ void http_connection_changed(void *context, struct MHD_Connection *connection, v
     (void)socket_context;
     struct http *http = context;
     if (what == MHD_CONNECTION_NOTIFY_STARTED)
-        connections_set(http->connections, socket_of(connection),
-                        http_now_ns() + HTTP_REQUEST_DEADLINE_S * TIME_NS_PER_S);
+        connections_open(http->connections, socket_of(connection), visitor_network(connection),
+                         http_now_ns() + HTTP_REQUEST_DEADLINE_S * TIME_NS_PER_S);
     else
         connections_forget(http->connections, socket_of(connection));
 }

@@ -6,6 +6,7 @@
 #include "http/desk.h"
 #include "http/events.h"
 #include "http/server.h"
+#include "http/visitor.h"
 #include "http/web.h"
 #include <microhttpd.h>
 #include <pthread.h>
@@ -20,7 +21,12 @@ struct http {
     struct board *board;
     struct connections *connections;
     struct events *events;
-    struct desk *desk;
+    struct desk *desk; /* notes */
+    struct desk *door; /* sign-ins */
+    struct visitors *visitors;
+    struct http_callbacks callbacks;
+    char *certificate, *key; /* PEM texts; NULL without TLS */
+    bool secure;             /* the connections are TLS */
     uint32_t n_hosts;
     char hosts[HTTP_MAX_HOSTS][NOTE_NAME_SIZE];
     pthread_t tender;
@@ -33,8 +39,9 @@ struct request {
     struct MHD_Connection *connection;
     const struct route *route;
     const struct web_file *file; /* NULL for an endpoint */
+    struct visitor visitor;
     bool too_large;
-    bool submitted; /* the note is with the watch, or was */
+    bool submitted; /* the item is with a desk, or was */
     size_t body_length;
     char body[HTTP_MAX_BODY];
     struct desk_item item;
@@ -44,6 +51,9 @@ struct route {
     const char *method, *path;
     enum MHD_Result (*answer)(struct request *request);
 };
+
+/* Whether strangers may ask for it: the sign-in, and the files of web/ that are no page of the watch. */
+bool http_is_open(const struct route *route, const struct web_file *file);
 
 /* The route of a path and method, or NULL; whether the path exists at all; the embedded file that it names,
  * NULL where it is an endpoint. */

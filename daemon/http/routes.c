@@ -39,6 +39,14 @@ static enum MHD_Result answer_file(struct request *request)
     return http_answer(request->connection, MHD_HTTP_OK, type_of(file->name), file->data, file->size);
 }
 
+bool http_is_open(const struct route *route, const struct web_file *file)
+{
+    if (file)
+        return strcmp(type_of(file->name), "text/html; charset=utf-8") != 0 ||
+               strcmp(file->name, "sign-in.html") == 0;
+    return route->answer == api_sign_in || route->answer == api_sign_out;
+}
+
 const struct route *http_find_route(const char *method, const char *path, bool *out_exists,
                                     const struct web_file **out_file)
 {

@@ -9,7 +9,10 @@
     ROUTE("GET", "/api/permit", api_permit)                                                                  \
     ROUTE("GET", "/api/events", api_events)                                                                  \
     ROUTE("GET", "/api/sound", api_sound)                                                                    \
-    ROUTE("POST", "/api/note", api_note)
+    ROUTE("POST", "/api/note", api_note)                                                                     \
+    ROUTE("GET", "/api/who", api_who)                                                                        \
+    ROUTE("POST", "/api/sign-in", api_sign_in)                                                               \
+    ROUTE("POST", "/api/sign-out", api_sign_out)
 
 #define HTTP_DECLARE(method, path, answer) enum MHD_Result answer(struct request *request);
 HTTP_ROUTES(HTTP_DECLARE)

@@ -1,7 +1,9 @@
-/* The pages' server: plain HTTP on a loopback address, fed by the board. The only user of libmicrohttpd.
+/* The pages' server: HTTP on a loopback address, or with accounts and a certificate on any, fed by the board.
+ * The only user of libmicrohttpd.
  *
- * Three threads of its own: the library's, which answers every request from memory; the tender, which wakes
- * event streams and cuts slow senders; and the desk, which hands notes to the watch and may wait for it. */
+ * Four threads of its own: the library's, which answers every request from memory; the tender, which wakes
+ * event streams, cuts slow senders and follows the file of accounts; and two desks, one that hands notes to
+ * the watch and may wait for it, one that checks passwords. */
 #ifndef HTTP_SERVER_H
 #define HTTP_SERVER_H
 
@@ -13,8 +15,8 @@
 #include <stdint.h>
 
 #define HTTP_MAX_HOSTS 8
-#define HTTP_MAX_CONNECTIONS 128
-#define HTTP_MAX_CONNECTIONS_AN_ADDRESS 96
+#define HTTP_MAX_CONNECTIONS 512
+#define HTTP_MAX_WAITING 256 /* of them, that have no complete request */
 #define HTTP_MAX_EVENT_STREAMS 64
 #define HTTP_MAX_BODY 8192
 #define HTTP_REQUEST_DEADLINE_S 5 /* from connecting to the last byte of the request */
@@ -24,11 +26,13 @@
 #define HTTP_BEAT_GAP_NS INT64_C(1000000000)
 
 struct http_setup {
-    const char *address; /* "127.0.0.1", "::1" or "localhost"; others are refused: they need credentials */
+    const char *address; /* "127.0.0.1", "::1", "localhost"; any other needs accounts and a certificate */
     uint32_t port;       /* 0: any free one, see http_port */
     struct board *board; /* borrowed until http_stop */
     uint32_t n_hosts; /* further names that a Host header may carry (of a proxy that asks for credentials) */
     const char *hosts[HTTP_MAX_HOSTS];
+    /* Files; NULL or "": none. Accounts of access/accounts.h; certificate (with its chain) and key in PEM. */
+    const char *accounts, *certificate, *key;
 };
 
 struct http_callbacks {

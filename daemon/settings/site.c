@@ -224,12 +224,21 @@ static void read_pages(struct group_reader *root, struct site *site)
     group_string(&pages, "address", READER_OPTIONAL, site->address, sizeof site->address);
     group_number(&pages, "port", READER_OPTIONAL, 0, 65535, &port);
     site->port = (uint32_t)port;
-    if (strcmp(site->address, "127.0.0.1") != 0 && strcmp(site->address, "::1") != 0 &&
-        strcmp(site->address, "localhost") != 0)
+    read_path(&pages, site->folder, "accounts", READER_OPTIONAL, site->accounts);
+    read_path(&pages, site->folder, "certificate", READER_OPTIONAL, site->certificate);
+    read_path(&pages, site->folder, "key", READER_OPTIONAL, site->key);
+    bool loopback = strcmp(site->address, "localhost") == 0 || strncmp(site->address, "127.", 4) == 0 ||
+                    strcmp(site->address, "::1") == 0;
+    if (!*site->certificate != !*site->key)
+        group_problem(&pages, *site->key ? "certificate" : "key", "is missing; they go together");
+    if (!loopback && (!*site->accounts || !*site->certificate))
         group_problem(&pages, "address",
-                      "is \"%s\"; allowed: a loopback address (127.0.0.1, ::1), for the pages "
-                      "have no credentials",
+                      "is \"%s\"; allowed without accounts, certificate and key: a loopback address "
+                      "(127.0.0.1, ::1)",
                       site->address);
+    while (site->n_hosts < SITE_MAX_HOSTS &&
+           group_text_at(&pages, "hosts", site->n_hosts, site->hosts[site->n_hosts], NOTE_NAME_SIZE))
+        site->n_hosts++;
     while (
         site->n_stations < SITE_MAX_STATIONS &&
         group_text_at(&pages, "stations", site->n_stations, site->stations[site->n_stations], NOTE_NAME_SIZE))

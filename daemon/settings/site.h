@@ -15,6 +15,7 @@
 
 #define SITE_MAX_STREAMS 8
 #define SITE_MAX_STATIONS 8
+#define SITE_MAX_HOSTS 8
 #define SITE_PATH_SIZE 512
 #define SITE_MAX_FILES 64
 #define SITE_DATE_SIZE 11 /* "2026-03-01" and its terminator */
@@ -54,8 +55,11 @@ struct site {
     char ledger[SITE_PATH_SIZE];
     char permit[SITE_PATH_SIZE];
     struct permit_fills permit_fills; /* what the site states in place of the permit file */
-    char calls[SITE_PATH_SIZE]; /* the folder of the call catalogue */
-    char address[64];           /* of the pages; loopback unless credentials are set */
+    char calls[SITE_PATH_SIZE];       /* the folder of the call catalogue */
+    char address[64]; /* of the pages; loopback unless accounts, certificate and key are set */
+    char accounts[SITE_PATH_SIZE], certificate[SITE_PATH_SIZE], key[SITE_PATH_SIZE]; /* "": none */
+    uint32_t n_hosts;
+    char hosts[SITE_MAX_HOSTS][NOTE_NAME_SIZE]; /* names by which others reach the pages */
     uint32_t port;
     uint32_t n_stations;
     char stations[SITE_MAX_STATIONS][NOTE_NAME_SIZE]; /* crew stations that acknowledge for themselves */

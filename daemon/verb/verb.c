@@ -9,6 +9,7 @@ const struct verb verbs[] = {
     {"explain", "say which entries, clauses and values are behind an entry", verb_explain},
     {"render", "render a scene to a WAV file and its truth to JSON", verb_render},
     {"report", "write one printable page about a watch, from its ledger alone", verb_report},
+    {"user", "list, add and remove who may use the pages from other machines", verb_user},
     {"fieldcheck", "check a hydrophone against a tone of known level", verb_fieldcheck},
     {NULL, NULL, NULL},
 };

@@ -27,5 +27,6 @@ int verb_report(int argc, char **argv);
 int verb_rerun(int argc, char **argv);
 int verb_render(int argc, char **argv);
 int verb_scan(int argc, char **argv);
+int verb_user(int argc, char **argv);
 
 #endif

@@ -54,6 +54,7 @@ static const char *const source_words[] = {"off",   "soft start", "full power", 
 
 /* By name, as an entry lists them. */
 static const struct note_field fields[] = {
+    {TEXT(account), .allowed = NAME_ALLOWED},
     {TEXT(advice), .allowed = "the id of an advice, at most 63 bytes"},
     {WORD(answer, answer_words),
      .allowed = "seen, passed, stopped, declined (acknowledgement); open, begin, end, close "

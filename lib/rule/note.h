@@ -45,6 +45,7 @@ struct note {
     int64_t occurred_ns; /* watch time, as the person says; equal to known_ns when nothing was said */
     int64_t planned_ns;  /* watch time of a planned start; 0: none */
     int64_t known_ns;    /* watch time, stamped when the watch accepts it */
+    char account[NOTE_NAME_SIZE]; /* whose session entered it; empty: at the machine itself */
     char person[NOTE_NAME_SIZE];
     char watch[NOTE_NAME_SIZE];
     char station[NOTE_NAME_SIZE];

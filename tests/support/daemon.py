@@ -28,7 +28,7 @@ class Daemon:
         deadline = time.monotonic() + wait_s
         while self.port is None and time.monotonic() < deadline and self.process.poll() is None:
             line = self.process.stdout.readline()
-            match = re.search(r"http://127\.0\.0\.1:(\d+)/", line)
+            match = re.search(r"https?://\S+:(\d+)/", line)
             self.port = int(match.group(1)) if match else None
         if self.port is None:
             raise RuntimeError("the daemon did not start: " + self.errors())
