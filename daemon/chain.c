@@ -436,6 +436,11 @@ void chain_get_watcher(struct chain *chain, struct watcher_state *out)
     watcher_get_state(chain->watcher, out);
 }
 
+void chain_warn(const struct chain *chain, struct text *out)
+{
+    rules_warn_of_permit(&chain->rules->permit, out);
+}
+
 uint32_t chain_get_port(const struct chain *chain)
 {
     return chain->http ? http_port(chain->http) : 0;

@@ -37,6 +37,8 @@ void chain_destroy(struct chain *chain);
 
 /* For progress and the watchdog. */
 void chain_get_watcher(struct chain *chain, struct watcher_state *out);
+/* What people must know of the permit before they rely on it, one line each (rules.h). */
+void chain_warn(const struct chain *chain, struct text *out);
 uint32_t chain_get_port(const struct chain *chain); /* 0 without pages */
 uint32_t chain_count_streams(const struct chain *chain);
 struct stream *chain_get_stream(struct chain *chain, uint32_t number); /* from 1; borrowed */

@@ -73,6 +73,16 @@ static void keep_watch(const struct site *site, struct chain *chain, const sigse
     sd_notify(0, "STOPPING=1");
 }
 
+/* In the journal, at every start: what nobody may overlook. */
+static void warn(const struct chain *chain)
+{
+    struct text words = {0};
+    chain_warn(chain, &words);
+    if (words.data)
+        fputs(words.data, stderr);
+    text_destroy(&words);
+}
+
 static int run(struct site *site, struct problems *problems)
 {
     struct chain_setup setup = {.site = site};
@@ -91,6 +101,7 @@ static int run(struct site *site, struct problems *problems)
     if (problems->lines.data)
         fputs(problems->lines.data, stderr);
     if (status == STATUS_OK) {
+        warn(chain);
         keep_watch(site, chain, &signals);
         status = chain_stop(chain, &lost);
     } else if (problems->count == 0)

@@ -97,13 +97,22 @@ static void describe_value(const struct permit_value *value, struct text *out)
                 value->who, *value->who ? ": " : "", value->source);
 }
 
-void rules_describe_permit(const struct permit *permit, struct text *out)
+static uint32_t count_marks(const struct permit *permit, bool (*has)(enum value_mark mark))
 {
-    uint32_t n_unverified = 0, n_filled = 0;
-    for (uint32_t i = 0; i < permit->n_values; i++) {
-        n_unverified += mark_unverified(permit->values[i].mark);
-        n_filled += permit->values[i].mark == MARK_FILLED;
-    }
+    uint32_t n = 0;
+    for (uint32_t i = 0; i < permit->n_values; i++)
+        n += has(permit->values[i].mark);
+    return n;
+}
+
+static bool is_filled(enum value_mark mark)
+{
+    return mark == MARK_FILLED;
+}
+
+void rules_warn_of_permit(const struct permit *permit, struct text *out)
+{
+    uint32_t n_unverified = count_marks(permit, mark_unverified), n_filled = count_marks(permit, is_filled);
     text_format(out, "permit %s: %s%s%s\n", permit->id, permit->document, *permit->revision ? "; " : "",
                 permit->revision);
     if (permit->demonstration)
@@ -112,14 +121,29 @@ void rules_describe_permit(const struct permit *permit, struct text *out)
         text_format(out, "this guideline has ENDED: it holds no more since %s\n", permit->ended);
     text_format(out, "%u of %u values are unverified%s\n", n_unverified, permit->n_values,
                 n_unverified ? ": check each against the document before you rely on it" : "");
-    for (uint32_t i = 0; i < permit->n_values; i++)
-        if (mark_unverified(permit->values[i].mark))
-            describe_value(&permit->values[i], out);
     if (n_filled > 0)
         text_format(out, "%u are stated by the settings\n", n_filled);
+}
+
+static void describe_values(const struct permit *permit, bool (*has)(enum value_mark mark), const char *what,
+                            struct text *out)
+{
+    if (count_marks(permit, has) > 0)
+        text_format(out, "%s\n", what);
     for (uint32_t i = 0; i < permit->n_values; i++)
-        if (permit->values[i].mark == MARK_FILLED)
+        if (has(permit->values[i].mark))
             describe_value(&permit->values[i], out);
+}
+
+void rules_describe_permit(const struct permit *permit, struct text *out)
+{
+    char asked[PERMIT_TEXT_SIZE];
+    rules_warn_of_permit(permit, out);
+    describe_values(permit, mark_unverified, "unverified:", out);
+    describe_values(permit, is_filled, "stated by the settings:", out);
+    for (uint32_t i = 0; permit_get_unwatched(permit, i, asked); i++)
+        text_format(out, "%s  %s\n", i == 0 ? "asked of people, and not watched by the program:\n" : "",
+                    asked);
 }
 
 /* In the middle of the water; the latitude hardly matters in shallow water. */

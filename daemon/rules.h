@@ -27,7 +27,9 @@ enum status rules_load(struct site *site, struct problems *problems, struct rule
 void rules_destroy(struct rules *rules);
 
 /* What people must know of the permit before they rely on it, one line each: that it is a demonstration, that
- * its guideline has ended, which values are unverified, and which the site states and who says so. */
+ * its guideline has ended, how many values are unverified, and how many the site states. */
+void rules_warn_of_permit(const struct permit *permit, struct text *out);
+/* The same with those values one by one, and what the program does not watch. */
 void rules_describe_permit(const struct permit *permit, struct text *out);
 
 /* What the site leaves to the catalogue: at what evidence contacts are graded, and how it fades. */

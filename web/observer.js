@@ -176,7 +176,7 @@ function drawPermit() {
   setText($("site"), site.site || "Hushwatch");
   setText($("permit_name"), permit.title + (permit.year ? " (" + permit.year + ")" : "") + (permit.ended ? `: ENDED, it holds no more since ${permit.ended}` : ""));
   $("permit_name").classList.toggle("demonstration", permit.demonstration);
-  setText($("permit_values"), doubtful.length ? `${doubtful.length} of ${permit.values.length} values are unverified: check each against the document before you rely on it.` : "All values were read from the document or are stated by the site.");
+  setText($("permit_values"), (doubtful.length ? `${doubtful.length} of ${permit.values.length} values are unverified: check each against the document before you rely on it.` : "All values were read from the document or are stated by the site.") + (permit.unwatched.length ? ` Asked of you, and not watched by the program: ${permit.unwatched.join("; ")}.` : ""));
   keyed($("values").tBodies[0], permit.values, (value) => value.key, () => el("tr"), (row, value) => cells(row, [value.key, value.value, value.mark + (value.unverified ? ": check" : ""), (value.who ? value.who + ": " : "") + value.source]));
   $("sign").elements.station.replaceChildren(...site.stations.map((name) => el("option", { text: name })));
 }

@@ -91,6 +91,18 @@ static void values(struct text *text, const struct permit *permit)
     text_append(text, "]");
 }
 
+static void unwatched(struct text *text, const struct permit *permit)
+{
+    char asked[PERMIT_TEXT_SIZE];
+    json_name(text, "unwatched");
+    text_append(text, "[");
+    for (uint32_t i = 0; permit_get_unwatched(permit, i, asked); i++) {
+        json_next(text);
+        text_json_string(text, asked);
+    }
+    text_append(text, "]");
+}
+
 static void permit_object(struct text *text, const struct permit *permit)
 {
     static const char *const activities[] = {
@@ -110,6 +122,7 @@ static void permit_object(struct text *text, const struct permit *permit)
     json_number(text, "confirm_countdown_s", permit->confirm_countdown_s, 1);
     zones(text, permit);
     values(text, permit);
+    unwatched(text, permit);
     text_append(text, "}");
 }
 

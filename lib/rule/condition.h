@@ -34,5 +34,7 @@ extern const struct condition condition_staff;
 extern const struct condition condition_override;
 extern const struct condition condition_stop;
 extern const struct condition condition_job;
+extern const struct condition condition_quality;
+extern const struct condition condition_charge;
 
 #endif

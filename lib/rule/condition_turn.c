@@ -54,7 +54,9 @@ static int64_t due_ns(const struct watch *watch)
     const struct permit_soft_start *soft = &watch->permit->soft_start;
     bool on_way = watch->turn.soft_ns >= 0 && soft->longest_to_line_minutes < 1e6;
     int64_t late_ns = watch->turn.soft_ns + time_from_minutes(soft->longest_to_line_minutes) + TIME_NS_PER_US;
-    return on_way && late_ns < due ? late_ns : due;
+    int64_t early_ns = watch->turn.up_ns + time_from_minutes(turn->step_up_minutes) + TIME_NS_PER_US;
+    due = on_way && late_ns < due ? late_ns : due;
+    return watch->turn.up_ns >= 0 && early_ns < due ? early_ns : due;
 }
 
 static void take_note(struct watch *watch, const struct note *note)
@@ -65,7 +67,7 @@ static void take_note(struct watch *watch, const struct note *note)
         memcpy(state->id, watch->recent.causes[0], sizeof state->id);
     }
     if (note->kind == NOTE_JOB && strcmp(note->answer, "begin") == 0)
-        state->soft_ns = -1; /* the line has begun */
+        state->soft_ns = state->up_ns = -1; /* the line has begun */
 }
 
 /* Shots of a turn, or of a small source, that are too far apart are silence. */
@@ -100,6 +102,10 @@ static void enter_phase(struct watch *watch, enum phase from, enum phase to)
         state->soft_ns = watch->now_ns;
     if (!source_sounds(to) && to != PHASE_BREAK)
         state->soft_ns = -1;
+    if (from == PHASE_LINE_TURN && source_sounds(to) && watch->permit->turn.step_up_minutes > 0)
+        state->up_ns = watch->now_ns;
+    if (to == PHASE_LINE_TURN || to == PHASE_REDUCED || !source_sounds(to))
+        state->up_ns = -1;
     if (from == PHASE_REDUCED && to == PHASE_FULL_POWER && small->stated && small->soft_start_after) {
         struct why why;
         why_reset(&why, small->clause, "full power again without a soft start");
@@ -107,11 +113,27 @@ static void enter_phase(struct watch *watch, enum phase from, enum phase to)
     }
 }
 
+/* The power is to go up again within the last minutes of the turn, and has been up for longer. */
+static void find_early(struct watch *watch)
+{
+    const struct permit_turn *turn = &watch->permit->turn;
+    struct turn_state *state = &watch->turn;
+    struct why why;
+    if (state->up_ns < 0 || watch->now_ns - state->up_ns <= time_from_minutes(turn->step_up_minutes))
+        return;
+    state->up_ns = -1;
+    why_reset(&why, turn->clause,
+              "more than %g min since the power went up in the turn, and no line has begun",
+              turn->step_up_minutes);
+    say(watch, "power up too early for the line", &why);
+}
+
 static void settle(struct watch *watch)
 {
     const struct permit_soft_start *soft = &watch->permit->soft_start;
     struct turn_state *state = &watch->turn;
     struct why why;
+    find_early(watch);
     if (state->soft_ns < 0 ||
         watch->now_ns - state->soft_ns <= time_from_minutes(soft->longest_to_line_minutes))
         return;

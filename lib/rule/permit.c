@@ -2,6 +2,7 @@
 #include "rule/permit.h"
 #include <math.h>
 #include <stddef.h>
+#include <stdio.h>
 
 static const char *const action_words[] = {
     [ACTION_LOG] = "log",   [ACTION_PREPARE] = "prepare", [ACTION_DELAY] = "delay",
@@ -91,4 +92,16 @@ const struct permit_break *permit_last_break(const struct permit *permit, bool d
         if (!(dark && permit->breaks[i].daylight))
             last = &permit->breaks[i];
     return last;
+}
+
+bool permit_get_unwatched(const struct permit *permit, uint32_t n, char out[PERMIT_TEXT_SIZE])
+{
+    if (n >= permit->n_records || n >= PERMIT_MAX_RECORDS)
+        return false;
+    const struct permit_record *record = &permit->records[n];
+    if (record->within_hours > 0)
+        snprintf(out, PERMIT_TEXT_SIZE, "%.180s: due within %g h", record->what, record->within_hours);
+    else
+        snprintf(out, PERMIT_TEXT_SIZE, "%.180s: due at once", record->what);
+    return true;
 }

@@ -288,6 +288,10 @@ struct permit {
  * there are no more. */
 enum status permit_check(const struct permit *permit, uint32_t n, char out_problem[PERMIT_TEXT_SIZE]);
 
+/* The n-th thing that the permit asks of people and that the watch does not look after, in words; false where
+ * there are no more. */
+bool permit_get_unwatched(const struct permit *permit, uint32_t n, char out[PERMIT_TEXT_SIZE]);
+
 /* Distances are stated from the source's middle: says how far its edge is from there. */
 void permit_set_edge(struct permit *permit, double half_length_m);
 /* How far from the source's middle the zone reaches. */

@@ -36,7 +36,8 @@ enum status watch_create(const struct watch_setup *setup, struct watch **out)
     watch->outage.past.full = SPANS_FOLD_LATER;
     watch->start.good_since_ns = watch->outage.since_ns = watch->outage.heard_ns = -1;
     watch->plan.planned_ns = watch->stop.passed.since_ns = watch->stop.acknowledged.since_ns = -1;
-    watch->turn.last_ns = watch->turn.soft_ns = -1;
+    watch->turn.last_ns = watch->turn.soft_ns = watch->turn.up_ns = -1;
+    watch->charge.due_ns = watch->quality.since_ns = -1;
     watch->turn.expected_minutes = NAN;
     watch->deterrent.on_ns = watch->deterrent.off_ns = -1;
     watch->job.since_ns = -1;

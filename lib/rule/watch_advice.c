@@ -107,15 +107,6 @@ static void ground(struct wanted *wanted, const struct watch *watch, enum advice
     why_add_cause(&wanted->why, watch->phase_id);
 }
 
-/* Whether the permit could ask for something of an animal that is heard or seen in this phase. */
-static bool phase_asks(const struct watch *watch)
-{
-    for (uint32_t i = 0; i < watch->permit->n_zones; i++)
-        if (watch->permit->zones[i].action[watch->phase] >= ACTION_PREPARE)
-            return true;
-    return false;
-}
-
 /* Nobody looks, or nothing is heard: what may go on only under watch may not. */
 static bool is_blind(const struct watch *watch, struct wanted *wanted, enum advice_word word)
 {
@@ -163,7 +154,7 @@ static void want_while_sounding(const struct watch *watch, const struct contact 
         need(wanted, text);
         if (wanted->key.word == ADVICE_STOP)
             need(wanted, "then a release by a named observer and a soft start");
-    } else if (!phase_asks(watch) || !is_blind(watch, wanted, ADVICE_PREPARE_TO_STOP)) {
+    } else if (!contact_phase_asks(watch) || !is_blind(watch, wanted, ADVICE_PREPARE_TO_STOP)) {
         char text[FLOW_TEXT_SIZE];
         snprintf(text, sizeof text, "%s: nothing asks for a change", phase_text(watch->phase));
         ground(wanted, watch, ADVICE_CARRY_ON, GROUND_SOUND, clause, text);

@@ -3,9 +3,9 @@
 #include <string.h>
 
 static const struct condition *const all[] = {
-    &condition_deterrent, &condition_quieting, &condition_soft_start, &condition_start,
-    &condition_outage,    &condition_turn,     &condition_test,       &condition_staff,
-    &condition_override,  &condition_stop,     &condition_job,
+    &condition_deterrent, &condition_quieting, &condition_soft_start, &condition_start,    &condition_outage,
+    &condition_turn,      &condition_test,     &condition_staff,      &condition_override, &condition_stop,
+    &condition_job,       &condition_quality,  &condition_charge,
 };
 #define N_CONDITIONS (sizeof all / sizeof all[0])
 

@@ -35,6 +35,14 @@ bool effort_kept_as(const struct watch *watch, const char *as)
     return count_as(watch, as) >= (least > 1 ? least : 1);
 }
 
+const char *effort_missing_as(const struct watch *watch, const char *as)
+{
+    bool visual = strcmp(as, "visual") == 0;
+    if (count_as(watch, as) > 0)
+        return visual ? "too few visual observers are on watch" : "too few acoustic observers are on watch";
+    return visual ? "no visual observer is on watch" : "no acoustic observer is on watch";
+}
+
 bool effort_anybody(const struct watch *watch)
 {
     return count_as(watch, "visual") > 0 || count_as(watch, "acoustic") > 0;
@@ -49,9 +57,11 @@ bool effort_kept(const struct watch *watch, const char **out_missing)
 {
     bool visual = !effort_pre_watch(watch)->visual || effort_kept_as(watch, "visual");
     bool acoustic = !effort_pre_watch(watch)->acoustic || effort_kept_as(watch, "acoustic");
+    bool some = count_as(watch, "visual") + count_as(watch, "acoustic") > 0;
     const char *missing = visual && acoustic ? ""
-                          : visual           ? "no acoustic observer is on watch"
-                          : acoustic         ? "no visual observer is on watch"
+                          : visual           ? effort_missing_as(watch, "acoustic")
+                          : acoustic         ? effort_missing_as(watch, "visual")
+                          : some             ? "too few visual and acoustic observers are on watch"
                                              : "neither a visual nor an acoustic observer is on watch";
     if (out_missing)
         *out_missing = missing;

@@ -26,6 +26,14 @@ int64_t contact_due_ns(const struct watch *watch)
     return due;
 }
 
+bool contact_phase_asks(const struct watch *watch)
+{
+    for (uint32_t i = 0; i < watch->permit->n_zones; i++)
+        if (watch->permit->zones[i].action[watch->phase] >= ACTION_PREPARE)
+            return true;
+    return false;
+}
+
 const struct contact *contact_lead(const struct watch *watch, bool crew)
 {
     const struct contact *lead = NULL;

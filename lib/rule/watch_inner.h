@@ -133,6 +133,7 @@ struct turn_state {
     double expected_minutes;
     int64_t last_ns; /* of the newest impulse in a turn or of a small source; -1 */
     int64_t soft_ns; /* when the soft start began that leads to a line; -1 */
+    int64_t up_ns;   /* when the power went up in a turn; -1 */
     bool said_apart;
     char id[FLOW_ID_SIZE];
 };
@@ -173,6 +174,21 @@ struct stop_state {
     struct stop_count given, passed, acknowledged;
     int64_t last_ns; /* of the impulses after it; -1 */
     char impulse_id[FLOW_ID_SIZE];
+};
+
+/* condition_charge.c: the charge of the job */
+struct charge_state {
+    double charge_kg, donor_kg; /* NAN or 0: nobody has said */
+    int64_t due_ns;             /* when it is judged; -1: it has not gone off */
+    bool judged, clipped;
+    double peak_db, range_m; /* of its loudest blow */
+    char id[FLOW_ID_SIZE], impulse_id[FLOW_ID_SIZE];
+};
+
+/* condition_quality.c: since when the watch is less than the permit needs; -1 */
+struct quality_state {
+    int64_t since_ns;
+    bool found;
 };
 
 #define RISE_LEVELS 10
@@ -258,6 +274,8 @@ struct watch {
     struct staff_state staff;
     struct rise rise;
     struct stop_state stop;
+    struct charge_state charge;
+    struct quality_state quality;
     struct plan_state plan;
     char unanswered[FLOW_ID_SIZE]; /* the advice that nobody answered and that was found so */
 
@@ -289,6 +307,8 @@ bool effort_anybody(const struct watch *watch);                      /* any obse
 bool effort_kept(const struct watch *watch, const char **out_missing);
 /* Whether that watch alone ("visual", "acoustic") is kept, by as many as the permit wants. */
 bool effort_kept_as(const struct watch *watch, const char *as);
+/* Where it is not: that nobody, or too few, are on watch, in words. */
+const char *effort_missing_as(const struct watch *watch, const char *as);
 void effort_sign_on(struct watch *watch, const struct note *note);
 void effort_sign_off(struct watch *watch, const struct note *note);
 void effort_unheard(struct watch *watch, const struct event *event);
@@ -315,6 +335,8 @@ void source_note(struct watch *watch, const struct note *note);
 void source_job(struct watch *watch, const struct note *note);
 /* Whose impulse it is, and of which job: before the event goes out. */
 void source_mark_impulse(struct watch *watch, struct event *event);
+/* How far away the source is from the channel, NAN where nobody knows. */
+double watch_range_m(const struct watch *watch, uint32_t stream, const struct impulse *impulse);
 void source_take_impulse(struct watch *watch, const struct event *event);
 void source_settle(struct watch *watch); /* silence, and a soft start that is too long */
 int64_t source_due_ns(const struct watch *watch);
@@ -372,6 +394,8 @@ void contact_present(struct watch *watch); /* puts new ones to the observer, pas
 int64_t contact_due_ns(const struct watch *watch);
 /* What the contact asks for in the present phase. */
 enum permit_action contact_wanted(const struct watch *watch, const struct contact *contact);
+/* Whether the permit could ask for something of an animal that is heard or seen in this phase. */
+bool contact_phase_asks(const struct watch *watch);
 /* The contact that asks for most: of those that went to the crew, or of all that were put to the observer. */
 const struct contact *contact_lead(const struct watch *watch, bool crew);
 /* The first that holds the start back; `questions` says whether open questions count. NULL for none. */

@@ -108,7 +108,7 @@ static bool is_placed(uint32_t stream, const struct impulse *impulse)
            impulse->channel <= FLOW_MAX_CHANNELS;
 }
 
-static double range_of(const struct watch *watch, uint32_t stream, const struct impulse *impulse)
+double watch_range_m(const struct watch *watch, uint32_t stream, const struct impulse *impulse)
 {
     if (impulse->range_from != RANGE_UNSET)
         return impulse->range_m;
@@ -119,7 +119,7 @@ static double range_of(const struct watch *watch, uint32_t stream, const struct 
 static void follow_reference(struct watch *watch, uint32_t stream, struct impulse *impulse)
 {
     struct source *source = &watch->source;
-    double range_m = range_of(watch, stream, impulse), speed_m_s = watch->setup.sound_speed_m_s;
+    double range_m = watch_range_m(watch, stream, impulse), speed_m_s = watch->setup.sound_speed_m_s;
     int64_t struck_ns = blow_struck_ns(impulse->time_ns, range_m, speed_m_s);
     if (!is_placed(stream, impulse))
         return;
@@ -149,7 +149,7 @@ void source_mark_impulse(struct watch *watch, struct event *event)
     impulse->whose = whose_take(whose, &said, &heard);
     follow_reference(watch, event->stream, impulse);
     whose_keep(watch, event, heard.level_db,
-               blow_struck_ns(impulse->time_ns, range_of(watch, event->stream, impulse),
+               blow_struck_ns(impulse->time_ns, watch_range_m(watch, event->stream, impulse),
                               watch->setup.sound_speed_m_s));
     snprintf(impulse->job, sizeof impulse->job, "%s", source->job);
 }
@@ -218,7 +218,7 @@ void source_take_impulse(struct watch *watch, const struct event *event)
     if (impulse->time_ns > source->impulse_ns)
         source->impulse_ns = impulse->time_ns < watch->now_ns ? impulse->time_ns : watch->now_ns;
     flow_id(event->run, event->stream, "impulse", event->counter, source->impulse_id);
-    double range_m = range_of(watch, event->stream, impulse);
+    double range_m = watch_range_m(watch, event->stream, impulse);
     int64_t struck_ns = blow_struck_ns(impulse->time_ns, range_m, watch->setup.sound_speed_m_s);
     bool first = blows_add(&source->blows, struck_ns, impulse->whose);
     source->n_impulses += impulse->whose == IMPULSE_OURS && first;
@@ -286,7 +286,8 @@ static int64_t silence_ns(const struct watch *watch)
 static int64_t too_long_ns(const struct watch *watch)
 {
     double minutes = watch->permit->soft_start.longest_minutes;
-    bool limited = watch->phase == PHASE_SOFT_START && minutes < 1e6 && !watch->source.too_long;
+    bool limited = watch->phase == PHASE_SOFT_START && watch->source.soft_start_ns >= 0 && minutes < 1e6 &&
+                   !watch->source.too_long;
     return limited ? watch->source.soft_start_ns + time_from_s(minutes * 60) + TIME_NS_PER_US : INT64_MAX;
 }
 
@@ -443,7 +444,9 @@ void source_enter_phase(struct watch *watch, enum phase from, enum phase to)
         judge_full_power(watch, from);
     bool goes_on =
         from == PHASE_HOLD || from == PHASE_REDUCED || (from == PHASE_BREAK && source->soft_start_ns >= 0);
-    if (to == PHASE_SOFT_START && !(goes_on && source->soft_start_ns >= 0)) {
+    /* At the end of a line turn the power goes up as the turn's rule says: that is no soft start. */
+    bool steps_up = from == PHASE_LINE_TURN && watch->permit->turn.step_up_minutes > 0;
+    if (to == PHASE_SOFT_START && !steps_up && !(goes_on && source->soft_start_ns >= 0)) {
         source->soft_start_ns = watch->now_ns;
         source->too_long = false;
     }

@@ -1,11 +1,13 @@
 #!/usr/bin/python3
 """Bad input gets a clear word, a sensible exit code and no silent default; nothing crashes and nothing is lost."""
+import json
 import math
 import os
 import re
 import struct
 import subprocess
 import sys
+import urllib.request
 import wave
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
@@ -119,6 +121,15 @@ def settings_files(place):
           "has ENDED: it holds no more since 2026-04-19" in done.stdout and "4 are stated by the settings" in done.stdout and
           "break.watch_kept = counts (filled; nobody: invented for tests: invented for tests)" in done.stdout,
           done.stdout + done.stderr)
+    check("--check says what is not watched", "not watched by the program:\n  report: due within 2160 h" in done.stdout, done.stdout)
+    with Daemon(settings(place + "/ended.cfg", permit=ended, stream=scene, ledger="ended.ledger",
+                         more=stated + "pages = { port = 0; };")) as daemon:
+        page = json.load(urllib.request.urlopen(daemon.url("/api/permit"), timeout=5))["permit"]
+        check("the page is told what is not watched, and what ended", page["unwatched"] == ["report: due within 2160 h"] and
+              page["ended"] == "2026-04-19", page)
+        daemon.terminate()
+        check("the daemon says at its start that the guideline has ended", "has ENDED: it holds no more since 2026-04-19" in
+              daemon.errors() and "values are unverified" in daemon.errors(), daemon.errors())
     with open(ROOT + "/config/permits/demonstration.cfg") as text, open(place + "/limit.cfg", "w") as out:
         out.write(text.read() + 'limits = { criteria = { value = ["germany-2008"]; mark = "invented"; source = "x"; }; };\n')
     for more, good in (("", False), ('source = { criteria = ["%s/config/criteria/germany-2008.cfg"]; };' % ROOT, True)):
