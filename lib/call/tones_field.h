@@ -82,8 +82,7 @@ struct tracer {
     float *level, *smooth, *occupancy, *gain; /* [stride] */
     float *smooth_snr, *floor; /* [stride], over the background: a shot's frame is its own background */
     float *tail;               /* [stride]: TAIL_SHARE where a path ran in the frame before, else 0 */
-    float *best;               /* [stride] of the recursion: the best score that leads to each cell ... */
-    int32_t *step;             /* ... and how far it comes, or STEP_START */
+    float *best;               /* [stride] of the recursion: the best score that leads to each cell */
     struct cells now, before;
     struct unheard unheard[GATE_BANDS];
     bool is_slow; /* its window outlasts a blow */
@@ -91,7 +90,7 @@ struct tracer {
     uint32_t n_paths; /* all that are open are among the first so many */
 
     double *centre;       /* [n_history]: input frame of each frame's middle */
-    int8_t *history_step; /* [n_history][stride] */
+    int8_t *history_step; /* [n_history][stride]: how far the best comes that leads to each, or STEP_START */
     float *history_power, *history_snr;
     uint32_t *trail;  /* [n_history]: bins of the path being traced back, the last first ... */
     double *trail_hz; /* ... and their refined frequencies */

@@ -16,34 +16,66 @@
 #define SLOPE_GAIN 0.35F  /* how fast the slope follows */
 
 typedef int8_t wide_bytes __attribute__((vector_size(WIDE_LANES)));
+typedef int8_t all_bytes __attribute__((vector_size(4 * WIDE_LANES)));
+
+/* Whole numbers that a byte can hold, as bytes. */
+static inline void store_steps(int8_t *to, const wide_mask *steps)
+{
+    const all_bytes bytes = (all_bytes)*steps;
+#if __BYTE_ORDER__ == __ORDER_LITTLE_ENDIAN__
+    const wide_bytes low = __builtin_shufflevector(bytes, bytes, 0, 4, 8, 12, 16, 20, 24, 28);
+#else
+    const wide_bytes low = __builtin_shufflevector(bytes, bytes, 3, 7, 11, 15, 19, 23, 27, 31);
+#endif
+    memcpy(to, &low, sizeof low);
+}
+
+/* The best path that leads to each of eight cells, from at most max_step bins away: a constant where this is
+ * used, so that the steps are written out. */
+static inline __attribute__((always_inline)) void
+best_of(const struct cells *before, uint32_t k, int max_step, wide_lanes *out_best, wide_mask *out_steps)
+{
+    const wide_lanes most = WIDE_ALL(STEP_COST_MOST);
+    wide_lanes best = {0}, score, slope;
+    wide_mask chosen = (wide_mask){0} + STEP_START;
+#pragma GCC unroll 9
+    for (int d = -max_step; d <= max_step; d++) {
+        wide_load(&score, before->score + (int)(MAX_STEP + k) - d);
+        wide_load(&slope, before->slope + (int)(MAX_STEP + k) - d);
+        const wide_lanes turn = (float)d - slope;
+        wide_lanes cost = STEP_COST + STEP_COST_BIN * WIDE_SIZE(turn);
+        cost = WIDE_CHOOSE(cost < most, cost, most);
+        const wide_lanes candidate = score - cost;
+        const wide_mask better = candidate > best;
+        chosen = (better & d) | (~better & chosen);
+        best = WIDE_CHOOSE(better, candidate, best);
+    }
+    *out_best = best;
+    *out_steps = chosen;
+}
 
 /* The best path that leads to each cell, 0 where it is better to begin there, and the score with the cell's
  * own gain. Cells begin paths, but for those that go on from another. */
 LANES_WIDE static void find_best(struct tracer *tracer, const float *snrs, int8_t *out_steps,
                                  float *out_scores)
 {
-    const wide_lanes most = WIDE_ALL(STEP_COST_MOST), none = {0};
+    const wide_lanes none = {0};
     const float ceiling = (float)tracer->setup.ceiling;
-    const int max_step = (int)tracer->max_step;
     struct cells *now = &tracer->now;
+    const struct cells *before = &tracer->before;
     for (uint32_t k = 0; k < tracer->n_bins; k += WIDE_LANES) {
-        wide_lanes best = none, chosen = WIDE_ALL(STEP_START), score, slope, gain, snr;
-        for (int d = -max_step; d <= max_step; d++) {
-            wide_load(&score, tracer->before.score + (int)(MAX_STEP + k) - d);
-            wide_load(&slope, tracer->before.slope + (int)(MAX_STEP + k) - d);
-            const wide_lanes turn = (float)d - slope;
-            wide_lanes cost = STEP_COST + STEP_COST_BIN * WIDE_SIZE(turn);
-            cost = WIDE_CHOOSE(cost < most, cost, most);
-            const wide_lanes candidate = score - cost;
-            const wide_mask better = candidate > best;
-            chosen = WIDE_CHOOSE(better, WIDE_ALL((float)d), chosen);
-            best = WIDE_CHOOSE(better, candidate, best);
-        }
-        const wide_mask steps = __builtin_convertvector(chosen, wide_mask);
-        const wide_bytes history = __builtin_convertvector(steps, wide_bytes);
+        wide_lanes best, gain, snr;
+        wide_mask steps;
+        if (tracer->max_step == 2)
+            best_of(before, k, 2, &best, &steps);
+        else if (tracer->max_step == 3)
+            best_of(before, k, 3, &best, &steps);
+        else if (tracer->max_step == 4)
+            best_of(before, k, 4, &best, &steps);
+        else
+            best_of(before, k, (int)tracer->max_step, &best, &steps);
         wide_store(tracer->best + k, &best);
-        memcpy(tracer->step + k, &steps, sizeof steps);
-        memcpy(out_steps + k, &history, sizeof history);
+        store_steps(out_steps + k, &steps);
         wide_load(&gain, tracer->gain + k);
         best = WIDE_CHOOSE(best < ceiling, best, WIDE_ALL(ceiling)) + gain;
         best = WIDE_CHOOSE(best > none, best, none);
@@ -53,8 +85,11 @@ LANES_WIDE static void find_best(struct tracer *tracer, const float *snrs, int8_
         wide_store(now->level + k + MAX_STEP, &snr);
         wide_store(now->peak + k + MAX_STEP, &snr);
     }
-    for (uint32_t at = MAX_STEP; at < tracer->stride + MAX_STEP; at++)
-        now->first[at] = tracer->frame;
+    uint64_t *first = now->first + MAX_STEP;
+    const uint64_t frame = tracer->frame;
+    const uint32_t n = tracer->stride;
+    for (uint32_t k = 0; k < n; k++)
+        first[k] = frame;
 }
 
 static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr)
@@ -73,10 +108,9 @@ static void inherit_cell(struct tracer *tracer, uint32_t at, int step, float snr
 }
 
 /* A cell that goes on from another, and what it says of the path that runs there. */
-static void step_cell(struct tracer *tracer, uint32_t k, float snr, float ceiling)
+static void step_cell(struct tracer *tracer, uint32_t k, int step, float snr, float ceiling)
 {
     const uint32_t at = k + MAX_STEP;
-    const int step = tracer->step[k];
     if (snr > NOT_HEARD && tracer->gain[k] > FLANK_GAIN &&
         snr < TAIL_SHARE * tracer->before.peak[(uint32_t)((int)at - step)]) {
         const float score = (tracer->best[k] < ceiling ? tracer->best[k] : ceiling) + FLANK_GAIN;
@@ -137,7 +171,7 @@ static void step_cells(struct tracer *tracer)
         const lanes going = lanes_least(lanes_load(scores + k), lanes_load(tracer->best + k));
         for (uint32_t bits = lanes_bits(going > lanes_all(0)); bits; bits &= bits - 1) {
             const uint32_t at = k + (uint32_t)__builtin_ctz(bits);
-            step_cell(tracer, at, snrs[at], ceiling);
+            step_cell(tracer, at, steps[at], snrs[at], ceiling);
         }
     }
     for (uint32_t k = 0; k < tracer->n_bins && tracer->n_paths > 0; k += TILE) {

@@ -90,7 +90,6 @@ static bool make_arrays(struct tracer *tracer)
     bool good = true;
     for (size_t i = 0; i < sizeof of_bins / sizeof of_bins[0]; i++)
         good = (*of_bins[i] = calloc(k, sizeof(float))) && good;
-    good = (tracer->step = calloc(k, sizeof *tracer->step)) && good;
     good = make_cells(&tracer->now, k + 2 * MAX_STEP) && good;
     good = make_cells(&tracer->before, k + 2 * MAX_STEP) && good;
     good = (tracer->held = calloc(tracer->n, sizeof(float))) && good;
@@ -145,12 +144,12 @@ void tracer_destroy(struct tracer *tracer)
         return;
     spectrum_destroy(tracer->spectrum);
     background_destroy(tracer->background);
-    void *const arrays[] = {
-        tracer->level,         tracer->floor,       tracer->smooth,      tracer->smooth_snr,
-        tracer->occupancy,     tracer->gain,        tracer->best,        tracer->step,
-        tracer->held,          tracer->limited,     tracer->power_store, tracer->tail,
-        tracer->excess_store,  tracer->centre,      tracer->trail,       tracer->history_step,
-        tracer->history_power, tracer->history_snr, tracer->trail_hz};
+    void *const arrays[] = {tracer->level,         tracer->floor,       tracer->smooth,
+                            tracer->smooth_snr,    tracer->occupancy,   tracer->gain,
+                            tracer->best,          tracer->held,        tracer->limited,
+                            tracer->power_store,   tracer->tail,        tracer->excess_store,
+                            tracer->centre,        tracer->trail,       tracer->history_step,
+                            tracer->history_power, tracer->history_snr, tracer->trail_hz};
     for (size_t i = 0; i < sizeof arrays / sizeof arrays[0]; i++)
         free(arrays[i]);
     free_cells(&tracer->now);
