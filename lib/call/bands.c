@@ -396,7 +396,7 @@ static bool store_group(struct bands *bands, uint32_t g)
             for (uint32_t l = 0; l < n_lanes; l++)
                 block[l * bands->stride + slot] = bands->slots[slot][lane + l];
         for (uint32_t l = 0; l < n_lanes; l++)
-            finite = finite && isfinite(block[l * bands->stride + bands->block_slots - 1]);
+            finite = finite && isfinite(bands->slots[bands->block_slots - 1][lane + l]);
     }
     return finite;
 }

@@ -213,13 +213,17 @@ LANES_WIDE static void run_half_band(const float *taps, uint32_t n_taps, const f
 }
 
 /* Every other of the n samples to a, the rest to b, beginning with a. */
-static void deal(const float *samples, uint32_t n, float *a, float *b)
+LANES_WIDE static void deal(const float *samples, uint32_t n, float *a, float *b)
 {
     uint32_t i = 0;
-    for (; 2 * (i + LANES) <= n; i += LANES) {
-        const lanes x = lanes_load(samples + 2 * i), y = lanes_load(samples + 2 * i + LANES);
-        lanes_store(a + i, __builtin_shufflevector(x, y, 0, 2, 4, 6));
-        lanes_store(b + i, __builtin_shufflevector(x, y, 1, 3, 5, 7));
+    for (; 2 * (i + WIDE_LANES) <= n; i += WIDE_LANES) {
+        wide_lanes x, y;
+        wide_load(&x, samples + 2 * i);
+        wide_load(&y, samples + 2 * i + WIDE_LANES);
+        const wide_lanes even = __builtin_shufflevector(x, y, 0, 2, 4, 6, 8, 10, 12, 14);
+        const wide_lanes odd = __builtin_shufflevector(x, y, 1, 3, 5, 7, 9, 11, 13, 15);
+        wide_store(a + i, &even);
+        wide_store(b + i, &odd);
     }
     for (; 2 * i + 1 < n; i++) {
         a[i] = samples[2 * i];
