@@ -42,6 +42,7 @@ struct bands {
     float *power;               /* [n][stride] */
     float *samples;             /* [stride * slot_frames] */
     float (*slots)[WIDE_LANES]; /* [block_slots]: of the group at work */
+    float *differences;         /* [block_slots * slot_frames]: of each sample and that two before */
 };
 
 bool bands_rate_carries(double rate_hz, struct band_edges edges)
@@ -245,8 +246,9 @@ enum status bands_create(double rate_hz, const struct band_edges *edges, uint32_
     bands->power = calloc((size_t)n * bands->stride, sizeof(float));
     bands->samples = calloc((size_t)bands->stride * slot_frames, sizeof(float));
     bands->slots = calloc(block_slots, sizeof *bands->slots);
+    bands->differences = calloc((size_t)block_slots * slot_frames, sizeof(float));
     double *response = malloc(RESPONSE_FRAMES * sizeof *response);
-    if (!bands->power || !bands->samples || !bands->slots || !response) {
+    if (!bands->power || !bands->samples || !bands->slots || !bands->differences || !response) {
         free(response);
         bands_destroy(bands);
         return STATUS_NO_MEMORY;
@@ -293,7 +295,7 @@ void bands_reset(struct bands *bands)
     } while (0)
 
 /* A pair of slots has an even number of frames, after which all outputs are in their places again;
- * block_slots odd: the last slot is one by itself. x[-2] and x[-1] are the two samples before. */
+ * block_slots odd: the last slot is one by itself. x: differences. */
 LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_t n_slots,
                                     uint32_t slot_frames, float out[][WIDE_LANES], float *out_sums)
 {
@@ -304,17 +306,17 @@ LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_
     for (; slot + 2 <= n_slots; slot += 2) {
         wide_lanes sums[2] = {{0}, {0}};
         for (uint32_t k = 0; k < slot_frames / 2; k++, x += 2) {
-            FRAME(x[0] - x[-2], g.y1, g.y2, sums[0]);
-            FRAME(x[1] - x[-1], g.y2, g.y1, sums[0]);
+            FRAME(x[0], g.y1, g.y2, sums[0]);
+            FRAME(x[1], g.y2, g.y1, sums[0]);
         }
         if (slot_frames % 2) {
-            FRAME(x[0] - x[-2], g.y1, g.y2, sums[0]);
-            FRAME(x[1] - x[-1], g.y2, g.y1, sums[1]);
+            FRAME(x[0], g.y1, g.y2, sums[0]);
+            FRAME(x[1], g.y2, g.y1, sums[1]);
             x += 2;
         }
         for (uint32_t k = 0; k < slot_frames / 2; k++, x += 2) {
-            FRAME(x[0] - x[-2], g.y1, g.y2, sums[1]);
-            FRAME(x[1] - x[-1], g.y2, g.y1, sums[1]);
+            FRAME(x[0], g.y1, g.y2, sums[1]);
+            FRAME(x[1], g.y2, g.y1, sums[1]);
         }
         sums[0] *= scale;
         sums[1] *= scale;
@@ -326,7 +328,7 @@ LANES_WIDE static void filter_group(struct group *group, const float *x, uint32_
     for (; slot < n_slots; slot++) {
         wide_lanes sum = {0};
         for (uint32_t k = 0; k < slot_frames; k++, x++) {
-            FRAME(x[0] - x[-2], g.y1, g.y2, sum);
+            FRAME(x[0], g.y1, g.y2, sum);
             for (uint32_t s = 0; s < SECTIONS; s++) {
                 const wide_lanes newest = g.y2[s];
                 g.y2[s] = g.y1[s];
@@ -401,14 +403,30 @@ static bool store_group(struct bands *bands, uint32_t g)
     return finite;
 }
 
+/* Of each sample that two before it. */
+LANES_WIDE static void subtract_earlier(const float *samples, uint32_t n, float *restrict out)
+{
+    wide_lanes x, earlier;
+    uint32_t i = 0;
+    for (; i + WIDE_LANES <= n; i += WIDE_LANES) {
+        wide_load(&x, samples + i);
+        wide_load(&earlier, samples + i - 2);
+        x -= earlier;
+        wide_store(out + i, &x);
+    }
+    for (; i < n; i++)
+        out[i] = samples[i] - (samples + i)[-2];
+}
+
 void bands_push_room(struct bands *bands)
 {
     const float *samples = bands_get_room(bands);
     bool finite = true;
     bands->has_room = false;
+    subtract_earlier(samples, bands->block_slots * bands->slot_frames, bands->differences);
     for (uint32_t g = 0; g < bands->n_groups; g++) {
-        filter_group(&bands->groups[g], samples, bands->block_slots, bands->slot_frames, bands->slots,
-                     bands->block_sums + (size_t)g * WIDE_LANES);
+        filter_group(&bands->groups[g], bands->differences, bands->block_slots, bands->slot_frames,
+                     bands->slots, bands->block_sums + (size_t)g * WIDE_LANES);
         finite = store_group(bands, g) && finite;
     }
     if (!finite)
@@ -469,5 +487,6 @@ void bands_destroy(struct bands *bands)
     free(bands->power);
     free(bands->samples);
     free(bands->slots);
+    free(bands->differences);
     free(bands);
 }
