@@ -90,6 +90,7 @@ enum status pulses_create(const struct call_class *classes, uint32_t n_classes, 
 void pulses_reset(struct pulses *pulses, uint64_t next_frame)
 {
     pulses->first_frame = next_frame;
+    pulses->n_frames = 0;
     stages_reset(pulses);
     for (uint32_t s = 0; s < pulses->n_searches; s++)
         pulse_search_reset(pulses->searches[s]);
@@ -198,9 +199,26 @@ void pulses_search(struct pulses *pulses, uint32_t index)
 
 void pulses_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct found_sink *sink)
 {
+    pulses_push_lowered(pulses, pascals, n, &(struct lowered){.factor = 1}, sink);
+}
+
+/* A decimator gives its first sample with the first that it takes: of n since the reset, n / factor, rounded
+ * up. */
+void pulses_push_lowered(struct pulses *pulses, const float *pascals, uint32_t n,
+                         const struct lowered *lowered, const struct found_sink *sink)
+{
     pulses->sink = sink;
-    for (uint32_t done = 0; done < n; done += PIECE_FRAMES)
-        stages_push(pulses, pascals + done, n - done < PIECE_FRAMES ? n - done : PIECE_FRAMES);
+    struct lowered left = *lowered, part = *lowered;
+    for (uint32_t done = 0; done < n; done += PIECE_FRAMES) {
+        const uint32_t take = n - done < PIECE_FRAMES ? n - done : PIECE_FRAMES;
+        const uint64_t before = (pulses->n_frames + left.factor - 1) / left.factor;
+        pulses->n_frames += take;
+        const uint64_t after = (pulses->n_frames + left.factor - 1) / left.factor;
+        part.n = left.factor > 1 ? (uint32_t)(after - before) : 0;
+        part.samples = left.samples;
+        stages_push(pulses, pascals + done, take, &part);
+        left.samples += part.n;
+    }
 }
 
 void pulses_finish(struct pulses *pulses, const struct found_sink *sink)

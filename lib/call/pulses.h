@@ -15,6 +15,7 @@
 #include "base/status.h"
 #include "call/catalogue.h"
 #include "call/found.h"
+#include "call/lowered.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -33,6 +34,10 @@ void pulses_reset(struct pulses *pulses, uint64_t next_frame);
  * The calls of one class come in order of known_frame; those of different classes may be out of order by up
  * to the samples of one push. */
 void pulses_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct found_sink *sink);
+/* The same, with what others have made of the samples already (struct lowered): used where pulses would make
+ * the same. With every push since the last reset, or with none. */
+void pulses_push_lowered(struct pulses *pulses, const float *pascals, uint32_t n,
+                         const struct lowered *lowered, const struct found_sink *sink);
 /* Ends all trains. The samples of an unfinished block (at most 64 slots: a few ms) are not searched. */
 void pulses_finish(struct pulses *pulses, const struct found_sink *sink);
 /* Says that what arrived in [start_frame, end_frame] in that band is the own source's: such pulses count for

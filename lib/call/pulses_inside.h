@@ -50,7 +50,7 @@ struct ear {
 
 struct pulses {
     double rate_hz;
-    uint64_t first_frame;
+    uint64_t first_frame, n_frames; /* n_frames: pushed since */
     uint32_t n_stages, n_searches, n_ears, n_classes;
     const struct call_class *classes; /* borrowed */
     struct stage stages[MAX_STAGES];
@@ -67,8 +67,9 @@ enum status stages_add_ear(struct pulses *pulses, const struct call_class *call_
 /* Once all ears are there. STATUS_NO_MEMORY; what was made is the owner's to destroy. */
 enum status stages_create(struct pulses *pulses);
 void stages_reset(struct pulses *pulses);
-/* Takes at most PIECE_FRAMES of sound and calls pulses_search with each block that a stage has full. */
-void stages_push(struct pulses *pulses, const float *pascals, uint32_t n);
+/* Takes at most PIECE_FRAMES of sound, and the same lowered, and calls pulses_search with each block that a
+ * stage has full. */
+void stages_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct lowered *lowered);
 void stages_destroy(struct pulses *pulses);
 
 /* pulses.c: the stage's ears hear the block that its bands have room for. */

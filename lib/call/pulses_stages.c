@@ -218,8 +218,9 @@ static void fill(struct pulses *pulses, uint32_t index, const float *samples, si
     }
 }
 
-void stages_push(struct pulses *pulses, const float *pascals, uint32_t n)
+void stages_push(struct pulses *pulses, const float *pascals, uint32_t n, const struct lowered *lowered)
 {
+    const float *decimated[MAX_STAGES];
     size_t n_decimated[MAX_STAGES];
     for (uint32_t s = 0; s < pulses->n_stages; s++) {
         struct stage *stage = &pulses->stages[s];
@@ -227,10 +228,16 @@ void stages_push(struct pulses *pulses, const float *pascals, uint32_t n)
             fill(pulses, s, pascals, n);
             continue;
         }
-        const struct stage *from = stage->from == NOWHERE ? NULL : &pulses->stages[stage->from];
-        n_decimated[s] = decimator_push(stage->decimator, from ? from->decimated : pascals,
-                                        from ? n_decimated[stage->from] : n, stage->decimated);
-        fill(pulses, s, stage->decimated, n_decimated[s]);
+        const bool first = stage->from == NOWHERE;
+        decimated[s] = stage->decimated;
+        if (first && stage->factor == lowered->factor) {
+            decimated[s] = lowered->samples;
+            n_decimated[s] = lowered->n;
+        } else {
+            n_decimated[s] = decimator_push(stage->decimator, first ? pascals : decimated[stage->from],
+                                            first ? n : n_decimated[stage->from], stage->decimated);
+        }
+        fill(pulses, s, decimated[s], n_decimated[s]);
     }
 }
 

@@ -37,7 +37,9 @@ struct tones {
     uint64_t slice_end;  /* a multiple of n_slice */
     bool owes;           /* a reset ended contours whose calls are still to be given */
     uint64_t owes_known;
-    float *limited;       /* [n_slice]: samples of which some were out of range */
+    float *limited; /* [n_slice]: samples of which some were out of range */
+    float *lowered; /* [most_lowered] of the last push, at the first band's rate; NULL: not kept */
+    uint32_t n_lowered, most_lowered;
     struct contour *open; /* [MAX_OPEN] */
     struct judge *judge;
     uint32_t n_bands;
@@ -214,6 +216,7 @@ void tones_destroy(struct tones *tones)
         free(tones->bands[i].samples);
     }
     free(tones->limited);
+    free(tones->lowered);
     free(tones->open);
     free(tones->judge);
     free(tones);
@@ -320,14 +323,35 @@ static void take_samples(struct tones *tones, const float *pascals, uint32_t n)
         pascals = tones->limited;
     }
     struct band *first = &tones->bands[0];
-    first->n_samples +=
-        (uint32_t)decimator_push(first->decimator, pascals, n, first->samples + first->n_samples);
+    float *out = first->samples + first->n_samples;
+    const uint32_t n_out = (uint32_t)decimator_push(first->decimator, pascals, n, out);
+    first->n_samples += n_out;
+    if (tones->lowered && tones->n_lowered + n_out <= tones->most_lowered) {
+        memcpy(tones->lowered + tones->n_lowered, out, n_out * sizeof *out);
+        tones->n_lowered += n_out;
+    }
+}
+
+enum status tones_keep_lowered(struct tones *tones, uint32_t max_frames)
+{
+    if (tones->n_bands == 0 || tones->bands[0].factor == 1 || tones->lowered)
+        return STATUS_OK;
+    tones->most_lowered = max_frames / tones->bands[0].factor + 1;
+    tones->lowered = calloc(tones->most_lowered, sizeof *tones->lowered);
+    return tones->lowered ? STATUS_OK : STATUS_NO_MEMORY;
+}
+
+struct lowered tones_get_lowered(const struct tones *tones)
+{
+    return tones->lowered ? (struct lowered){tones->bands[0].factor, tones->n_lowered, tones->lowered}
+                          : (struct lowered){.factor = 1};
 }
 
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink)
 {
     if (n > 0)
         pay(tones, sink);
+    tones->n_lowered = 0;
     while (n > 0) {
         uint64_t left = tones->slice_end - tones->next_frame;
         uint32_t take = n < left ? n : (uint32_t)left;

@@ -12,6 +12,7 @@
 #include "call/catalogue.h"
 #include "call/found.h"
 #include "call/gate.h"
+#include "call/lowered.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -36,6 +37,12 @@ void tones_reset(struct tones *tones, uint64_t next_frame);
 /* Takes n samples in pascals (what is not finite counts as 0, more than 1e6 Pa as 1e6); gives the calls that
  * they make known, in the order of known_frame. How the samples are cut into pieces changes nothing. */
 void tones_push(struct tones *tones, const float *pascals, uint32_t n, const struct found_sink *sink);
+
+/* Keeps from now on what the first decimator makes of each push of at most max_frames samples, for others who
+ * want the sound at that rate; once, before the first push. STATUS_NO_MEMORY. */
+enum status tones_keep_lowered(struct tones *tones, uint32_t max_frames);
+/* What was kept of the last push; factor 1 where nothing is kept. */
+struct lowered tones_get_lowered(const struct tones *tones);
 
 /* What the own source's tail adds to what is pushed from now on: where it holds 3 dB more than the band
  * does at its quietest, or is masked, the backgrounds know it for the tail. */

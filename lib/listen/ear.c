@@ -19,6 +19,8 @@ static enum status create_parts(const struct ear_setup *setup, struct ear *ear)
     if (status == STATUS_OK && ear->listens)
         status = tones_create(setup->classes, setup->n_classes, setup->rate_hz, &ear->tones);
     if (status == STATUS_OK && ear->listens)
+        status = tones_keep_lowered(ear->tones, setup->max_frames);
+    if (status == STATUS_OK && ear->listens)
         status = pulses_create(setup->classes, setup->n_classes, setup->rate_hz, &ear->pulses);
     return status;
 }
@@ -158,7 +160,8 @@ bool ear_push(struct ear *ear, const float *frames, uint32_t n, uint32_t n_chann
     }
     if (ear->listens) {
         tones_push(ear->tones, ear->pascals, n, &calls);
-        pulses_push(ear->pulses, ear->pascals, n, &calls);
+        const struct lowered lowered = tones_get_lowered(ear->tones);
+        pulses_push_lowered(ear->pulses, ear->pascals, n, &lowered, &calls);
     }
     return bad == 0;
 }

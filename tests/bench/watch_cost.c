@@ -158,7 +158,8 @@ static void push_ear(struct ear *ear, const float *frames, uint32_t n, uint32_t 
     times[STAGE_TONES] = bench_cpu_s();
     tones_push(ear->tones, ear->pascals, n, &calls);
     times[STAGE_PULSES] = bench_cpu_s();
-    pulses_push(ear->pulses, ear->pascals, n, &calls);
+    const struct lowered lowered = tones_get_lowered(ear->tones);
+    pulses_push_lowered(ear->pulses, ear->pascals, n, &lowered, &calls);
     times[STAGE_STRIPS] = bench_cpu_s();
     for (int s = STAGE_PICK; s < STAGE_STRIPS; s++)
         out[s] += times[s + 1] - times[s] - clock_s;

@@ -5,6 +5,7 @@
 #include "base/random.h"
 #include "base/units.h"
 #include "call/pulses.h"
+#include "call/tones.h"
 #include "call/trains.h"
 #include "support/catalogue.h"
 #include "support/clicks.h"
@@ -518,6 +519,81 @@ static void hidden_pulses_make_no_train(void **state)
     }
 }
 
+static void drop(void *context, const struct found_call *found)
+{
+    (void)context;
+    (void)found;
+}
+
+/* In chunks of any size with a loss of sound half way, alone or with what the tones make of the samples. */
+static void hear_beside_tones(struct hearing *hearing, bool lowered)
+{
+    enum { MOST = 4096 };
+    struct pulses *pulses;
+    struct tones *tones;
+    struct found_sink sink = {take, hearing}, none = {drop, NULL};
+    uint32_t n_lowered = 0;
+    assert_int_equal(pulses_create(catalogue.classes, catalogue.n_classes, hearing->rate_hz, &pulses),
+                     STATUS_OK);
+    assert_int_equal(tones_create(catalogue.classes, catalogue.n_classes, hearing->rate_hz, &tones),
+                     STATUS_OK);
+    assert_int_equal(tones_keep_lowered(tones, MOST), STATUS_OK);
+    hearing->pulses = pulses;
+    for (size_t at = 0, lost = hearing->n / 2; at < hearing->n;) {
+        size_t n = 1 + (size_t)(random_uniform(&hearing->random) * (MOST - 1)),
+               end = at < lost ? lost : hearing->n;
+        n = n < end - at ? n : end - at;
+        if (lowered) {
+            tones_push(tones, hearing->x + at, (uint32_t)n, &none);
+            const struct lowered made = tones_get_lowered(tones);
+            n_lowered += made.factor > 1 ? made.n : 0;
+            pulses_push_lowered(pulses, hearing->x + at, (uint32_t)n, &made, &sink);
+        } else {
+            pulses_push(pulses, hearing->x + at, (uint32_t)n, &sink);
+        }
+        at += n;
+        if (at == lost) {
+            pulses_finish(pulses, &sink);
+            pulses_reset(pulses, at + 77);
+            tones_reset(tones, at + 77);
+        }
+    }
+    pulses_finish(pulses, &sink);
+    pulses_get_rejections(pulses, hearing->rejections);
+    assert_int_equal(n_lowered > 0, lowered);
+    pulses_destroy(pulses);
+    tones_destroy(tones);
+}
+
+/* Slow clicks run on a copy at a quarter of the rate, which the tones make too. */
+static void what_the_tones_have_lowered_does(void **state)
+{
+    (void)state;
+    const struct clicker whale = {"sperm whale slow clicks", 192000, 80, 0.02, 5.0, 0.03, 3000, 3e-3, 0};
+    struct hearing *runs[2];
+    for (int k = 0; k < 2; k++) {
+        double sent_s;
+        runs[k] = listen_for(whale.rate_hz, whale.seconds, 4711);
+        add_clicks(runs[k], &whale, 0.5, &sent_s);
+        hear_beside_tones(runs[k], k == 1);
+    }
+    double interval_s;
+    uint32_t n_other, n = pulses_given(runs[0], whale.class_name, &interval_s, &n_other);
+    printf("# figure slow clicks alone and beside tones: %u pulses in %u and %u calls\n", n, runs[0]->n_found,
+           runs[1]->n_found);
+    assert_true(n > 0);
+    assert_int_equal(runs[0]->n_found, runs[1]->n_found);
+    assert_memory_equal(runs[0]->rejections, runs[1]->rejections, sizeof runs[0]->rejections);
+    for (uint32_t i = 0; i < runs[0]->n_found; i++) {
+        const struct found_call *a = &runs[0]->found[i], *b = &runs[1]->found[i];
+        assert_true(a->class_index == b->class_index && a->start_frame == b->start_frame &&
+                    a->end_frame == b->end_frame && a->known_frame == b->known_frame &&
+                    a->snr_db == b->snr_db);
+    }
+    done(runs[0]);
+    done(runs[1]);
+}
+
 static int load(void **state)
 {
     (void)state;
@@ -538,6 +614,7 @@ int main(void)
         cmocka_unit_test(a_rate_says_what_it_cannot_hear),
         cmocka_unit_test(bad_samples_pass),
         cmocka_unit_test(hidden_pulses_make_no_train),
+        cmocka_unit_test(what_the_tones_have_lowered_does),
     };
     return cmocka_run_group_tests_name("pulses", tests, load, NULL);
 }
