@@ -123,7 +123,7 @@ static void read_train(struct group_reader *group, struct train_shape *train)
 static void read_song(struct group_reader *root, const char *form, struct song_shape *song)
 {
     struct group_reader group;
-    double units = 0, kinds = 1;
+    double units = 0, kinds = 1, bout = 2;
     if (!group_child(root, "song", READER_OPTIONAL, &group))
         return;
     if (strcmp(form, "tone") != 0)
@@ -135,6 +135,10 @@ static void read_song(struct group_reader *root, const char *form, struct song_s
     group_number(&group, "lone_evidence", READER_REQUIRED, 0, 20, &song->lone_evidence);
     group_number(&group, "lone_s", READER_REQUIRED, 0, 3600, &song->lone_s);
     group_number(&group, "repeat_evidence", READER_REQUIRED, 0, 20, &song->repeat_evidence);
+    group_number(&group, "bout_units", READER_REQUIRED, 2, 32, &bout);
+    group_number(&group, "bout_s", READER_REQUIRED, 1, 600, &song->bout_s);
+    group_number(&group, "bout_evidence", READER_REQUIRED, 0, 20, &song->bout_evidence);
+    song->bout_units = (uint32_t)bout;
     song->min_units = (uint32_t)units;
     song->min_kinds = (uint32_t)kinds;
     group_done(&group);

@@ -28,6 +28,11 @@
 #define LONGEST_CHIP_S 0.12
 #define TURNS 0.3 /* least share of chips at which the hopping turns: a sweep never does */
 
+/* Of an open tone that may be a machine's: a call beside it waits. */
+#define HOLD_S 0.1
+#define HOLD_DB 25.0
+#define HOLD_RATIO 1.6
+
 struct peak {
     double bin, power, ratio;
     bool taken;
@@ -432,6 +437,20 @@ void bursts_push(struct bursts *bursts, const struct other_frame *frame, const s
         end_block(bursts);
     learn(bursts, frame->power);
     bursts->n_frames++;
+}
+
+bool bursts_hold(const struct bursts *bursts, const struct found_call *call)
+{
+    for (uint32_t k = 0; k < MAX_OPEN; k++) {
+        const struct burst *burst = &bursts->open[k];
+        double hz = burst->last_bin * bursts->setup.bin_hz;
+        if (burst->used && burst->n * bursts->setup.frame_s >= HOLD_S &&
+            burst->start_frame <= call->end_frame &&
+            burst->ratio >= burst->n * units_power_ratio(call->snr_db + HOLD_DB) &&
+            call->high_hz >= hz / HOLD_RATIO && call->low_hz <= hz * HOLD_RATIO)
+            return true;
+    }
+    return false;
 }
 
 void bursts_finish(struct bursts *bursts, uint64_t known_frame, const struct found_sink *sink)

@@ -20,6 +20,8 @@ enum status bursts_create(const struct other_setup *setup, struct bursts **out);
 void bursts_reset(struct bursts *bursts);
 void bursts_push(struct bursts *bursts, const struct other_frame *frame, const struct found_sink *sink);
 void bursts_finish(struct bursts *bursts, uint64_t known_frame, const struct found_sink *sink);
+/* See others_hold. */
+bool bursts_hold(const struct bursts *bursts, const struct found_call *call);
 void bursts_destroy(struct bursts *bursts);
 
 #endif

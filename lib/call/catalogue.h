@@ -59,6 +59,8 @@ struct song_shape {
     uint32_t min_kinds;
     double within_s, min_unit_s;
     double lone_evidence, lone_s, repeat_evidence; /* of units that are no song */
+    uint32_t bout_units;          /* of one kind, within bout_s: an animal that calls alike ... */
+    double bout_s, bout_evidence; /* ... says so much */
 };
 
 /* How a sound that is no animal's is recognised; call/others.h says each in full. */

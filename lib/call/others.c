@@ -137,6 +137,11 @@ void others_push(struct others *others, const float *first, const float *second,
     }
 }
 
+bool others_hold(const struct others *others, const struct found_call *call)
+{
+    return bursts_hold(others->bursts, call);
+}
+
 void others_finish(struct others *others, const struct found_sink *sink)
 {
     bursts_finish(others->bursts, others->next_frame > 0 ? others->next_frame - 1 : 0, sink);

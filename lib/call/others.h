@@ -33,10 +33,13 @@ void others_reset(struct others *others, uint64_t next_frame);
  * changes nothing. */
 void others_push(struct others *others, const float *first, const float *second, uint32_t n,
                  const struct found_sink *sink);
+/* Whether a straight tone that has lasted for a tenth of a second is still open close beside this call, and
+ * stands out far more: what the call is, a machine's skirt or not, is known when that tone ends. */
+bool others_hold(const struct others *others, const struct found_call *call);
 /* Ends what is open. */
 void others_finish(struct others *others, const struct found_sink *sink);
-/* Whether the rate carries half of the octaves of the class's band and its manner is one of those above, with the channels
- * that it needs. */
+/* Whether the rate carries half of the octaves of the class's band and its manner is one of those above, with
+ * the channels that it needs. */
 bool others_can_hear(const struct others *others, uint32_t class_index);
 void others_destroy(struct others *others);
 

@@ -116,8 +116,19 @@ static double mean_of(const float *values, uint32_t n)
     return sum / n;
 }
 
-/* Whether the band's power swells at a rate of the class, and how far the line stands out. */
-static bool is_beating(struct swells *swells, const struct watched *watched, double *out_ratio)
+/* The line's place between bins: a parabola through three logarithms. */
+static double place_of(const float *power, uint32_t i)
+{
+    double a = log(fmax(power[i - 1], 1e-30)), b = log(fmax(power[i], 1e-30)),
+           c = log(fmax(power[i + 1], 1e-30));
+    double bend = a - 2 * b + c;
+    return i + (bend < 0 ? fmax(-0.5, fmin(0.5, 0.5 * (a - c) / bend)) : 0);
+}
+
+/* Whether the band's power swells at a rate of the class, how far the line stands out, and the interval of
+ * the slowest swell that does: that of the shaft, where it is heard. */
+static bool is_beating(struct swells *swells, const struct watched *watched, double *out_ratio,
+                       double *out_interval_s)
 {
     const struct other_shape *sound = &swells->setup.classes[watched->class_index].sound;
     memcpy(swells->sorted, watched->power, FRAMES * sizeof(float));
@@ -139,12 +150,20 @@ static bool is_beating(struct swells *swells, const struct watched *watched, dou
     uint32_t first = (uint32_t)fmax(6, sound->low_rate_hz / bin_hz);
     uint32_t end = (uint32_t)fmin(FRAMES / 2.0 - BESIDE_FAR - 1, sound->high_rate_hz / bin_hz);
     double most = 0;
+    uint32_t slowest = 0;
     for (uint32_t i = first; i < end; i++) {
         const float *power = swells->sorted;
         uint32_t low = i > BESIDE_FAR ? i - BESIDE_FAR : 1;
         double beside = (mean_of(power + low, i - 2 - low) + mean_of(power + i + 3, BESIDE_FAR - 2)) / 2;
-        most = beside > 0 ? fmax(most, power[i] / beside) : most;
+        double ratio = beside > 0 ? power[i] / beside : 0;
+        if (ratio > BEAT_RATIO && most <= BEAT_RATIO)
+            slowest = i;
+        else if (slowest + 1 == i && power[i] > power[slowest])
+            slowest = i;
+        most = fmax(most, ratio);
     }
+    if (slowest > 0)
+        *out_interval_s = 1 / (place_of(swells->sorted, slowest) * bin_hz);
     *out_ratio = most;
     return *out_ratio > BEAT_RATIO;
 }
@@ -185,8 +204,8 @@ static void look(struct swells *swells, uint64_t end_frame, const struct found_s
     for (uint32_t i = 0; i < swells->n_watched; i++) {
         const struct watched *watched = &swells->watched[i];
         const struct call_class *class = &swells->setup.classes[watched->class_index];
-        double ratio = 1;
-        bool is = class->sound.manner == MANNER_BEATS  ? is_beating(swells, watched, &ratio)
+        double ratio = 1, interval_s = 0;
+        bool is = class->sound.manner == MANNER_BEATS  ? is_beating(swells, watched, &ratio, &interval_s)
                   : class->sound.manner == MANNER_HUMP ? is_hump(swells, watched, &ratio)
                                                        : is_snapping(swells, watched);
         if (!is)
@@ -199,6 +218,7 @@ static void look(struct swells *swells, uint64_t end_frame, const struct found_s
                                          .high_hz = fmin(class->high_hz, swells->setup.rate_hz / 2),
                                          .n_pulses =
                                              class->sound.manner == MANNER_SNAPS ? swells->n_snaps : 0,
+                                         .interval_frames = interval_s * swells->setup.rate_hz,
                                          .snr_db = units_power_db(ratio),
                                          .mean_square_pa2 = mean_of(watched->power, FRAMES)};
         sink->take(sink->context, &found);

@@ -12,12 +12,22 @@
 #define RHYTHM_ERROR 0.03   /* of an interval */
 #define MOST_MULTIPLE 4     /* missed pulses */
 
+#define SKIRT_RATIO 1.41  /* half an octave beside a machine's tone ... */
+#define SKIRT_DB 25.0     /* ... and so much weaker ... */
+#define SKIRT_AFTER_S 0.5 /* ... while it lasts, and so long after */
+#define SWELL_DB 5.0      /* by which noise that swells rises over its mean: (1 + 0.7)^2 */
+
 void covers_reset(struct covers *covers, const struct call_class *classes, uint32_t n_classes, double rate_hz)
 {
     memset(covers, 0, sizeof *covers);
     covers->classes = classes;
     covers->n_classes = n_classes;
     covers->rate_hz = rate_hz;
+}
+
+static uint32_t remembered(uint32_t n)
+{
+    return n < COVERS_REMEMBERED ? n : COVERS_REMEMBERED;
 }
 
 /* A line keeps its frequency, and slow branches tell theirs finely: one that passes beside it, or across, is
@@ -60,33 +70,83 @@ static bool is_the_same(const struct covers *covers, const struct found_call *so
            sound->high_hz <= call->high_hz + pad;
 }
 
+static enum manner manner_of(const struct covers *covers, const struct found_call *sound)
+{
+    return covers->classes[sound->class_index].sound.manner;
+}
+
+/* A machine's tone has skirts: what its keying and its transducer make beside it, and what its surroundings
+ * give back. */
+static bool is_skirt(const struct covers *covers, const struct found_call *sound,
+                     const struct found_call *call)
+{
+    enum manner manner = manner_of(covers, sound);
+    return (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses == 0 &&
+           call->snr_db <= sound->snr_db - SKIRT_DB && call->high_hz >= sound->low_hz / SKIRT_RATIO &&
+           call->low_hz <= sound->high_hz * SKIRT_RATIO &&
+           call->end_frame <= sound->end_frame + 2 * SKIRT_AFTER_S * covers->rate_hz;
+}
+
+/* Stands out of noise no farther than its swelling alone might. */
+static bool is_swell(const struct covers *covers, const struct found_call *call)
+{
+    const struct call_class *class = &covers->classes[call->class_index];
+    double least_db = class->form == CALL_TONE ? class->tone.min_snr_db : class->train.min_snr_db;
+    return call->snr_db < least_db + SWELL_DB;
+}
+
+/* What swells is told once it has, for as long again it goes on. */
+static double swells_until(const struct found_call *sound)
+{
+    return 2 * sound->end_frame - sound->start_frame;
+}
+
+/* Frames of a train that has the rhythm of the swells. */
+static double swelling_frames(const struct covers *covers, const struct found_call *sound,
+                              const struct found_call *call)
+{
+    if (call->n_pulses == 0 || !is_swell(covers, call) || !shares_rhythm(sound, call))
+        return 0;
+    return fmax(0, fmin(swells_until(sound), call->end_frame) - fmax(sound->start_frame, call->start_frame));
+}
+
+bool covers_swells(const struct covers *covers, const struct found_call *call)
+{
+    bool swells = false;
+    for (uint32_t i = 0; i < remembered(covers->n_sounds) && !swells; i++) {
+        const struct found_call *sound = &covers->sounds[i];
+        swells = manner_of(covers, sound) == MANNER_BEATS && call->end_frame > sound->start_frame &&
+                 call->start_frame < swells_until(sound);
+    }
+    return swells && is_swell(covers, call);
+}
+
 /* Frames of the call that the sound covers. A train is as wide as its class's band: the edges of bursts and
  * chips in it make pulses there. */
 static double covered_frames(const struct covers *covers, const struct found_call *sound,
                              const struct found_call *call)
 {
-    enum manner manner = covers->classes[sound->class_index].sound.manner;
+    enum manner manner = manner_of(covers, sound);
+    if (manner == MANNER_BEATS)
+        return swelling_frames(covers, sound, call);
     bool edges = (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses > 0 &&
                  sound->high_hz >= call->low_hz && sound->low_hz <= call->high_hz;
     if (is_the_same(covers, sound, call))
         return call->end_frame - call->start_frame;
-    if (!edges && (!shares_band(covers, sound, call) || !shares_rhythm(sound, call)))
+    bool skirt = is_skirt(covers, sound, call);
+    if (!edges && !skirt && (!shares_band(covers, sound, call) || !shares_rhythm(sound, call)))
         return 0;
     /* A tone is told to within its window: one that only touches the sound is full of it. */
     double window =
         call->n_pulses == 0 ? covers->classes[call->class_index].tone.window_s * covers->rate_hz : 0;
-    return fmax(0, fmin(sound->end_frame + window, call->end_frame) -
+    double after = skirt ? fmax(window, SKIRT_AFTER_S * covers->rate_hz) : window;
+    return fmax(0, fmin(sound->end_frame + after, call->end_frame) -
                        fmax(sound->start_frame - window, call->start_frame));
 }
 
 static bool is_enough(double frames, const struct found_call *call)
 {
     return frames > 0 && frames >= COVERED * (call->end_frame - call->start_frame);
-}
-
-static uint32_t remembered(uint32_t n)
-{
-    return n < COVERS_REMEMBERED ? n : COVERS_REMEMBERED;
 }
 
 double covers_evidence(const struct covers *covers, const struct found_call *call)

@@ -18,6 +18,7 @@ static bool is_hidden(struct listen *listen, const struct found_call *found)
 /* A train is known with its last pulse; a machine's tone whose edges and beats made those pulses is known
  * when it ends. So trains wait for their class's natural delay, at most TRAIN_WAITS_S. */
 #define TRAIN_WAITS_S 0.5
+#define TONE_WAITS_S 1.0 /* for a machine's tone beside it that goes on */
 
 void listen_take_call(void *context, uint32_t channel, const struct found_call *found)
 {
@@ -27,6 +28,8 @@ void listen_take_call(void *context, uint32_t channel, const struct found_call *
     double until = found->end_frame + fmin(class->natural_delay_s, TRAIN_WAITS_S) * listen->setup.rate_hz;
     if (class->animal && class->form == CALL_TRAIN && until > (double)call.known_frame)
         call.known_frame = (uint64_t)until;
+    if (class->animal && class->form == CALL_TONE && listen->others && others_hold(listen->others, found))
+        call.known_frame += (uint64_t)(TONE_WAITS_S * listen->setup.rate_hz);
     joiner_take(&listen->joiner, channel, &call);
 }
 
@@ -121,7 +124,8 @@ static double most_evidence(struct listen *listen, const struct found_call *foun
     if (class->form == CALL_TONE)
         most = fmin(most, class->evidence) *
                fmin(1, fmax(STRUCK_EVIDENCE, (found->snr_db - class->tone.min_snr_db) / SURE_DB));
-    return struck_begins(&listen->struck, class, found) ? fmin(most, STRUCK_EVIDENCE) : most;
+    bool doubtful = struck_begins(&listen->struck, class, found) || covers_swells(&listen->covers, found);
+    return doubtful ? fmin(most, STRUCK_EVIDENCE) : most;
 }
 
 static void take_joined(void *context, const struct joined_call *joined)

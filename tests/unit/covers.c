@@ -4,13 +4,15 @@
 #include "listen/covers.h"
 
 #define RATE 48000.0
-enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, N_CLASSES };
+enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, SONAR, SCREW, N_CLASSES };
 
 static const struct call_class classes[N_CLASSES] = {
     [WHISTLE] = {.name = "whistle", .animal = true, .form = CALL_TONE, .evidence = 2},
     [CLICKS] = {.name = "clicks", .animal = true, .form = CALL_TRAIN, .evidence = 3},
     [PING] = {.name = "ping", .form = CALL_TONE, .evidence = -5},
     [RAIN] = {.name = "rain", .form = CALL_NOISE, .evidence = 0},
+    [SONAR] = {.name = "sonar", .form = CALL_TONE, .evidence = -5, .sound = {.manner = MANNER_BURST}},
+    [SCREW] = {.name = "screw", .form = CALL_NOISE, .evidence = -5, .sound = {.manner = MANNER_BEATS}},
     [SOUNDER] = {.name = "sounder", .form = CALL_TRAIN, .evidence = -1},
 };
 
@@ -80,6 +82,51 @@ static void trains_are_covered_by_their_own_rhythm_only(void **state)
     assert_near(covers_evidence(&covers, &clicks), 2, 0);
 }
 
+/* What a loud ping has beside it is 25 dB weaker and less than half an octave away, and comes with it. */
+static void skirts_of_a_ping_are_covered(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    struct found_call ping = sound_of(SONAR, 1, 2, 3500, 3900);
+    ping.snr_db = 60;
+    take(&covers, ping, against);
+    struct found_call call = sound_of(WHISTLE, 1.3, 2, 3000, 3400);
+    call.snr_db = 12;
+    assert_near(covers_evidence(&covers, &call), 0, 0);
+    call.snr_db = 40; /* as loud as an animal near by */
+    assert_near(covers_evidence(&covers, &call), 2, 0);
+    call = sound_of(WHISTLE, 1.3, 2, 7000, 8000);
+    assert_near(covers_evidence(&covers, &call), 2, 0);
+    call = sound_of(WHISTLE, 2.2, 3.6, 3000, 3400); /* goes on when the ping is over */
+    assert_near(covers_evidence(&covers, &call), 2, 0);
+}
+
+/* A screw that swells 1.65 times a second: trains of its rhythm that barely stand out are of its noise. */
+static void noise_that_swells_covers_its_own_rhythm(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    struct found_call screw = sound_of(SCREW, 0, 10, 2000, 20000);
+    screw.interval_frames = RATE / 1.65;
+    take(&covers, screw, against);
+    struct found_call clicks = sound_of(CLICKS, 8, 19, 200, 400);
+    clicks.n_pulses = 18, clicks.interval_frames = RATE / 1.65, clicks.snr_db = 3;
+    assert_near(covers_evidence(&covers, &clicks), 0, 0);
+    assert_true(covers_swells(&covers, &clicks));
+    clicks.interval_frames = 0.77 * RATE; /* another rhythm: doubted, not withheld */
+    assert_near(covers_evidence(&covers, &clicks), 3, 0);
+    assert_true(covers_swells(&covers, &clicks));
+    clicks.interval_frames = RATE / 1.65, clicks.snr_db = 12;
+    assert_near(covers_evidence(&covers, &clicks), 3, 0);
+    assert_false(covers_swells(&covers, &clicks));
+    clicks.snr_db = 3, clicks.start_frame = 21 * RATE, clicks.end_frame = 30 * RATE;
+    assert_false(covers_swells(&covers, &clicks));
+}
+
 struct told {
     uint32_t n, n_sounds;
     struct found_call last;
@@ -123,6 +170,8 @@ int main(void)
         cmocka_unit_test(a_sound_before_the_call_withholds_it),
         cmocka_unit_test(a_sound_after_the_call_names_it_once),
         cmocka_unit_test(trains_are_covered_by_their_own_rhythm_only),
+        cmocka_unit_test(skirts_of_a_ping_are_covered),
+        cmocka_unit_test(noise_that_swells_covers_its_own_rhythm),
         cmocka_unit_test(entries_come_at_most_every_ten_seconds),
     };
     return cmocka_run_group_tests_name("covers", tests, NULL, NULL);

@@ -17,10 +17,14 @@ static const struct call_class unit = {.name = "unit",
                                                 .min_kinds = 2,
                                                 .within_s = 25,
                                                 .min_unit_s = 0.5,
-                                                .lone_evidence = 1,
+                                                .lone_evidence = 0.3,
                                                 .lone_s = 300,
-                                                .repeat_evidence = 0.02}};
-static const struct call_class free_class = {.name = "upcall", .group = GROUP_BALEEN_WHALE, .evidence = 1.5};
+                                                .repeat_evidence = 0.02,
+                                                .bout_units = 5,
+                                                .bout_s = 60,
+                                                .bout_evidence = 1}};
+static const struct call_class free_class = {
+    .name = "upcall", .group = GROUP_BALEEN_WHALE, .form = CALL_TONE, .evidence = 1.5};
 
 static double say(struct song *song, double start_s, double length_s, double middle_hz)
 {
@@ -31,17 +35,57 @@ static double say(struct song *song, double start_s, double length_s, double mid
     return fmin(unit.evidence, song_evidence(song, &unit, &found));
 }
 
-static void a_lone_unit_is_for_the_observer(void **state)
+static void a_lone_unit_says_little(void **state)
 {
     (void)state;
     static struct song song;
     song_reset(&song, RATE);
-    assert_near(say(&song, 10, 1, 400), 1, 0);
+    assert_near(say(&song, 10, 1, 400), 0.3, 0);
     for (int i = 1; i < 15; i++)
-        assert_near(say(&song, 10 + 20.0 * i, 1, 400 + 50 * i), 0.02, 0);
-    assert_near(say(&song, 311, 1, 400), 1, 0); /* after lone_s it may speak again */
-    const struct found_call other = {.start_frame = 0, .end_frame = RATE, .low_hz = 100, .high_hz = 200};
-    assert_true(isinf(song_evidence(&song, &free_class, &other)));
+        assert_near(say(&song, 10 + 20.0 * i, 1, 200 * pow(1.3, i)), 0.02, 0);
+    assert_near(say(&song, 311, 1, 400), 0.3, 0); /* after lone_s it may speak again */
+}
+
+static double say_other(struct song *song, double start_s, double length_s)
+{
+    const struct found_call other = {.start_frame = start_s * RATE,
+                                     .end_frame = (start_s + length_s) * RATE,
+                                     .low_hz = 100,
+                                     .high_hz = 200};
+    return song_evidence(song, &free_class, &other);
+}
+
+/* Of a class that states no song: by itself, among tones that are none, long, long after, among song. */
+static void a_tone_among_lone_units_is_doubted(void **state)
+{
+    (void)state;
+    static struct song song;
+    song_reset(&song, RATE);
+    assert_true(isinf(say_other(&song, 5, 1)));
+    say(&song, 10, 1, 400);
+    assert_true(isinf(say_other(&song, 15, 1)));
+    say(&song, 30, 1, 900);
+    assert_near(say_other(&song, 40, 1), SONG_COMPANY_EVIDENCE, 0);
+    assert_true(isinf(say_other(&song, 40, 8)));
+    assert_true(isinf(say_other(&song, 95, 1)));
+    for (int i = 0; i < 12; i++)
+        say(&song, 200 + 3.0 * i, 1.2, i % 2 ? 300 : 700);
+    assert_true(isinf(say_other(&song, 290, 1)));
+}
+
+/* Five of one kind within a minute are for an observer, once in lone_s; five of five kinds are not. */
+static void a_bout_of_one_kind_is_a_look(void **state)
+{
+    (void)state;
+    static struct song song;
+    song_reset(&song, RATE);
+    for (int i = 0; i < 4; i++)
+        assert_true(say(&song, 14.0 * i, 1.2, 400) <= 0.3);
+    assert_near(say(&song, 56, 1.2, 410), 1, 0);
+    assert_near(say(&song, 70, 1.2, 400), 0.02, 0);
+    song_reset(&song, RATE);
+    for (int i = 0; i < 5; i++)
+        assert_true(say(&song, 14.0 * i, 1.2, 200 * pow(1.4, i)) <= 0.3);
 }
 
 static void units_of_two_kinds_at_the_rate_of_song_are_song(void **state)
@@ -92,7 +136,9 @@ static void tones_at_random_are_hardly_ever_song(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(a_lone_unit_is_for_the_observer),
+        cmocka_unit_test(a_lone_unit_says_little),
+        cmocka_unit_test(a_tone_among_lone_units_is_doubted),
+        cmocka_unit_test(a_bout_of_one_kind_is_a_look),
         cmocka_unit_test(units_of_two_kinds_at_the_rate_of_song_are_song),
         cmocka_unit_test(one_sound_again_and_again_is_none),
         cmocka_unit_test(tones_at_random_are_hardly_ever_song),
