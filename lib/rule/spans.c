@@ -101,3 +101,16 @@ int64_t spans_total_ns(const struct spans *spans)
         total += spans->all[i].end_ns - spans->all[i].start_ns;
     return total;
 }
+
+void spans_newest(struct spans *spans, int64_t total_ns)
+{
+    uint32_t first = spans->n;
+    while (first > 0 && total_ns > 0) {
+        struct span *span = &spans->all[--first];
+        if (span->end_ns - span->start_ns > total_ns)
+            span->start_ns = span->end_ns - total_ns;
+        total_ns -= span->end_ns - span->start_ns;
+    }
+    spans->n -= first;
+    memmove(spans->all, spans->all + first, spans->n * sizeof spans->all[0]);
+}

@@ -34,6 +34,8 @@ void spans_common(const struct spans *a, const struct spans *b, struct spans *ou
 void spans_without(const struct spans *a, const struct spans *b, struct spans *out);
 /* Forgets what was before that time. */
 void spans_forget_before(struct spans *spans, int64_t time_ns);
+/* Leaves only the newest total_ns of them. */
+void spans_newest(struct spans *spans, int64_t total_ns);
 /* The sum of all stretches. */
 int64_t spans_total_ns(const struct spans *spans);
 

@@ -163,6 +163,67 @@ static bool phase_lets_accrue(const struct watch *watch)
     return true;
 }
 
+/* Makes a stretch longer by one that touches it. Whether it did. */
+static bool join(struct span *run, const struct span *other)
+{
+    bool touches = other->start_ns <= run->end_ns && other->end_ns >= run->start_ns;
+    bool longer = touches && (other->start_ns < run->start_ns || other->end_ns > run->end_ns);
+    if (longer && other->start_ns < run->start_ns)
+        run->start_ns = other->start_ns;
+    if (longer && other->end_ns > run->end_ns)
+        run->end_ns = other->end_ns;
+    return longer;
+}
+
+/* The whole hole that this one is of: somebody missing, the program down and nothing heard may follow each
+ * other. */
+static struct span whole_hole(const struct watch *watch, int64_t start_ns, int64_t end_ns)
+{
+    const struct effort *effort = &watch->effort;
+    const struct span present = {effort->hole_ns, watch->now_ns};
+    struct span run = {start_ns, end_ns};
+    bool longer, ears = effort_pre_watch(watch)->acoustic;
+    do {
+        longer = effort->hole_ns >= 0 && join(&run, &present);
+        for (uint32_t i = 0; i < effort->missed.n; i++)
+            longer = join(&run, &effort->missed.all[i]) || longer;
+        for (uint32_t i = 0; ears && i < effort->deaf.n; i++)
+            longer = join(&run, &effort->deaf.all[i]) || longer;
+    } while (longer);
+    return run;
+}
+
+/* The stretches that make up the credit: the newest of those that were kept. */
+static struct spans counted(const struct watch *watch)
+{
+    const struct effort *effort = &watch->effort;
+    struct spans all = effort->kept;
+    if (effort->accruing)
+        spans_add(&all, effort->from_ns, watch->now_ns);
+    spans_newest(&all, effort->credit_ns);
+    return all;
+}
+
+static void count_only(struct watch *watch, const struct spans *counted)
+{
+    struct effort *effort = &watch->effort;
+    effort->kept = *counted;
+    effort->from_ns = watch->now_ns;
+    effort->credit_ns = spans_total_ns(counted);
+}
+
+/* After a hole that is too long only what was kept since counts. */
+static void begin_after_hole(struct watch *watch, int64_t start_ns, int64_t end_ns)
+{
+    struct span hole = whole_hole(watch, start_ns, end_ns);
+    if (hole.end_ns - hole.start_ns < hole_limit_ns(watch))
+        return;
+    struct spans since = {0}, left = counted(watch);
+    spans_add(&since, hole.end_ns, watch->now_ns);
+    spans_common(&left, &since, &left);
+    count_only(watch, &left);
+}
+
 void effort_update(struct watch *watch)
 {
     struct effort *effort = &watch->effort;
@@ -170,10 +231,12 @@ void effort_update(struct watch *watch)
     bool accrues = kept && phase_lets_accrue(watch);
     if (!kept && effort->hole_ns < 0)
         effort->hole_ns = watch->now_ns;
-    if (effort->hole_ns >= 0 && watch->now_ns - effort->hole_ns >= hole_limit_ns(watch))
-        effort_begin_anew(watch);
-    if (kept)
+    if (effort->hole_ns >= 0)
+        begin_after_hole(watch, effort->hole_ns, watch->now_ns);
+    if (kept && effort->hole_ns >= 0) {
+        spans_add(&effort->missed, effort->hole_ns, watch->now_ns);
         effort->hole_ns = -1;
+    }
     if (accrues && !effort->accruing)
         effort->from_ns = watch->now_ns;
     if (!accrues && effort->accruing)
@@ -210,20 +273,11 @@ static struct spans unheard_by_all(const struct watch *watch, const struct unhea
 /* Takes back what was accrued while nothing was heard, and begins anew after too long a hole. */
 static void take_back(struct watch *watch, const struct spans *newly)
 {
-    struct effort *effort = &watch->effort;
-    struct spans counted = effort->kept;
-    if (effort->accruing)
-        spans_add(&counted, effort->from_ns, watch->now_ns);
-    spans_common(&counted, newly, &counted);
-    int64_t left = effort->credit_ns - spans_total_ns(&counted);
-    effort->credit_ns = left > 0 ? left : 0;
-    const struct span *run = &effort->deaf.all[effort->deaf.n - 1];
-    if (run->end_ns - run->start_ns >= hole_limit_ns(watch)) {
-        int64_t since = watch->now_ns - run->end_ns;
-        int64_t most = effort->accruing && since > 0 ? since : 0;
-        if (effort->credit_ns > most)
-            effort->credit_ns = most;
-    }
+    struct spans left = counted(watch);
+    spans_without(&left, newly, &left);
+    count_only(watch, &left);
+    for (uint32_t i = 0; i < newly->n; i++)
+        begin_after_hole(watch, newly->all[i].start_ns, newly->all[i].end_ns);
 }
 
 void effort_unheard(struct watch *watch, const struct event *event)
@@ -275,7 +329,8 @@ int64_t effort_due_ns(const struct watch *watch)
     if (effort_ready_ns(watch) >= 0)
         earlier(&due, watch->now_ns, effort_ready_ns(watch));
     if (effort->hole_ns >= 0)
-        earlier(&due, watch->now_ns, effort->hole_ns + hole_limit_ns(watch));
+        earlier(&due, watch->now_ns,
+                whole_hole(watch, effort->hole_ns, watch->now_ns).start_ns + hole_limit_ns(watch));
     if (last_deaf(watch))
         earlier(&due, watch->now_ns, last_deaf(watch)->end_ns + NEXT_PIECE_NS);
     return due;

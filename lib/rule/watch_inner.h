@@ -44,6 +44,7 @@ struct effort {
     int64_t credit_ns; /* at mark_ns */
     int64_t mark_ns;
     int64_t hole_ns;                          /* since when the watch is not kept; -1 while it is */
+    struct spans missed;                      /* the stretches of that before, lately */
     struct spans unheard[WATCH_MAX_CHANNELS]; /* of each channel, lately */
     struct spans deaf;                        /* when no listening channel heard, lately */
     char deaf_id[FLOW_ID_SIZE];
@@ -437,5 +438,8 @@ void plan_get(const struct watch *watch, struct watch_plan *out);
 void note_take(struct watch *watch, const struct note *note);
 /* A note that makes no sense now: a finding says so. */
 void note_without_effect(struct watch *watch, const char *format, ...) __attribute__((format(printf, 2, 3)));
+
+/* watch_view.c: all is ready, and a release would be taken. */
+bool view_release_possible(const struct watch *watch);
 
 #endif

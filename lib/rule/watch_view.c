@@ -81,6 +81,11 @@ static void copy_contact(const struct watch *watch, const struct contact *contac
     };
 }
 
+bool view_release_possible(const struct watch *watch)
+{
+    return watch->phase == PHASE_READY && !contact_holder(watch, true) && !effort_deaf(watch);
+}
+
 void watch_get_view(const struct watch *watch, struct watch_view *out)
 {
     memset(out, 0, sizeof *out);
@@ -92,8 +97,7 @@ void watch_get_view(const struct watch *watch, struct watch_view *out)
     memcpy(out->job, watch->source.job, sizeof out->job);
     out->source_heard = watch->source.heard;
     out->source_said = watch->source.said;
-    out->release_possible =
-        watch->phase == PHASE_READY && !contact_holder(watch, true) && !effort_deaf(watch);
+    out->release_possible = view_release_possible(watch);
     memcpy(out->released_by, watch->released_by, sizeof out->released_by);
     add_pre_watch(watch, out);
     add_source(watch, out);

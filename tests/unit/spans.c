@@ -41,6 +41,11 @@ static void spans_agree_with_bits(void **state)
         assert_true(bits_of(&out) == (bits_a & ~bits_b));
         spans_common(&a, &b, &a); /* in place */
         assert_true(bits_of(&a) == (bits_a & bits_b));
+        int most = (int)(random_bits(&random) % 8);
+        for (bits_a &= bits_b; __builtin_popcountll(bits_a) > most; bits_a &= bits_a - 1)
+            ; /* the lowest bit is the oldest */
+        spans_newest(&a, most);
+        assert_true(bits_of(&a) == bits_a);
     }
 }
 
