@@ -4,7 +4,10 @@ over the clauses, without the watch's table of phases and without its timers.
 Times are whole nanoseconds. An event is a dictionary: kind, at (when it became known), and its fields. What a
 detection, a word of a person or a measure means is looked up in the list of events that were known by then; only
 what an order to the crew leaves behind (it was asked, it was passed, it stays) is carried from moment to moment."""
+import bisect
+import functools
 import math
+import time
 
 MIN, S = 60 * 10**9, 10**9
 GAP, DECAY_S, ACT, SPREAD = 300 * S, 300.0, 8.0, 0.2
@@ -21,10 +24,12 @@ REASONS = {"life": 1, "refusal": 2, "instability": 4}
 NEVER = 1 << 62
 
 
+@functools.lru_cache(maxsize=None)
 def minutes(value):
     return NEVER if math.isinf(value) else round(value * 60e9)
 
 
+@functools.lru_cache(maxsize=None)
 def p_inside(distance_m, reach_m):
     """Log-normal about the stated distance (docs/watch.md)."""
     if math.isinf(reach_m):
@@ -51,25 +56,33 @@ class Animal:
 
 
 class Oracle:
-    def __init__(self, permit, events, depth, half_length, light):
-        self.p, self.events, self.depth0, self.half, self.light = permit, events, depth, half_length, light
-        self.rows = permit["clearances"]
+    def __init__(self, permit, day, events):
+        """day: what is given of the day (depth, half, channels, lights, zero_s); lights are (from when, what it is)."""
+        self.p, self.events, self.depth0, self.half = permit, events, day["depth"], day["half"]
+        self.channels, self.zero_s, self.durations = day["channels"], day["zero_s"], day.get("durations")
+        self.lights = [at for at, _ in day["lights"]]
+        self.light_names = [name for _, name in day["lights"]]
+        self.rows, self.cache = permit["clearances"], {}
+
+    def light(self, t):
+        return self.light_names[bisect.bisect_right(self.lights, t) - 1]
 
     # ---- who is on watch, how deep the water is, what measures are at work: the newest word of each
-    def people(self, t, upto):
+    def people(self, upto):
         on = set()
         for e in self.events[:upto]:
-            if e["at"] <= t and e["kind"] == "sign-on":
+            if e["kind"] == "sign-on":
                 on.add((e["person"], e["watch"]))
-            elif e["at"] <= t and e["kind"] == "sign-off":
+            elif e["kind"] == "sign-off":
                 on.discard((e["person"], e["watch"]))
         return on
 
     def newest(self, upto, kind, field):
-        for e in reversed(self.events[:upto]):
-            if e["kind"] == kind and e.get(field) is not None:
-                return e
-        return None
+        key = (upto, kind, field)
+        if key not in self.cache:
+            self.cache[key] = next((e for e in reversed(self.events[:upto])
+                                    if e["kind"] == kind and e.get(field) is not None), None)
+        return self.cache[key]
 
     def depth(self, upto):
         e = self.newest(upto, "weather", "depth_m")
@@ -77,14 +90,11 @@ class Oracle:
 
     def row(self, upto):
         """The longest pre-watch of those that hold at this depth; of all where nobody knows it."""
-        depth, rows = self.depth(upto), self.p["pre_watches"]
-        if depth is None:
-            best = rows[0]
-            for r in rows:
-                if r["minutes"] > best["minutes"]:
-                    best = r
-            return best
-        return [r for i, r in enumerate(rows) if i == 0 or depth > r["deeper"]][-1]
+        if upto not in self.cache:
+            depth, rows = self.depth(upto), self.p["pre_watches"]
+            self.cache[upto] = (max(rows, key=lambda r: r["minutes"]) if depth is None else
+                                [r for i, r in enumerate(rows) if i == 0 or depth > r["deeper"]][-1])
+        return self.cache[upto]
 
     def count(self, on, watch):
         return len([1 for person, w in on if w == watch])
@@ -100,9 +110,9 @@ class Oracle:
     def observer(self, on, person):
         return (person, "visual") in on or (person, "acoustic") in on
 
-    def breaks(self):
-        dark = self.light == "dark"
-        return [b for i, b in enumerate(self.p["breaks"]) if not (b["daylight"] and dark)] or self.p["breaks"][:1]
+    def breaks(self, t):
+        dark = self.light(t) == "dark"
+        return [b for b in self.p["breaks"] if not (b["daylight"] and dark)] or self.p["breaks"][:1]
 
     # ---- conditions of a start
     def conditions(self, t, upto, on, last_end, deaf, history):
@@ -138,17 +148,28 @@ class Oracle:
             return False
         return worked >= minutes(self.p["deterrent_least"])
 
-    def poor(self, upto):
+    def poor(self, t, upto):
         p = self.p
         visibility, sea = (self.newest(upto, "weather", f) for f in ("visibility_m", "sea_state"))
-        return (self.light == "dark" or
+        return (self.light(t) == "dark" or
                 (p["least_visibility"] > 0 and visibility is not None and
                  visibility["visibility_m"] < p["least_visibility"]) or
                 (sea is not None and sea["sea_state"] > p["most_sea_state"]))
 
+    def closed(self, t):
+        """Whether the day of the year, both ends included, is of the closed season; it may go over the new year."""
+        first, last = self.p["closed_from"], self.p["closed_to"]
+        if not first or self.zero_s is None:
+            return False
+        day = time.gmtime(self.zero_s + t // S)
+        today = 100 * day.tm_mon + day.tm_mday
+        return first <= today <= last if first <= last else not last < today < first
+
     def start_held(self, t, upto, on, deaf, history):
         p, (good, orders) = self.p, history
-        if not (p["dark"] or p["good_minutes"] > 0 or p["most_orders"] > 0) or not self.poor(upto):
+        if self.closed(t):
+            return True
+        if not (p["dark"] or p["good_minutes"] > 0 or p["most_orders"] > 0) or not self.poor(t, upto):
             return False
         if p["dark"] == 2 or (p["dark"] == 1 and (not self.kept_as(on, "acoustic") or deaf)):
             return True

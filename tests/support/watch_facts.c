@@ -2,13 +2,15 @@
  * with the tests' invented ones as JSON; watch_facts play ID reads sequences of events from standard input,
  * one event a line, and answers each line "?" with a line of facts:
  *
- *   new DEPTH_M HALF_LENGTH_M UNIX_S LATITUDE LONGITUDE    another sequence ("-": nobody knows)
- *   n NS KIND|FIELD=VALUE|...    a note                    c NS GROUP EVIDENCE END_NS    a call
- *   u NS START_NS END_NS         unheard time              r NS OUTAGE_START_NS          the program starts
- * again i NS                         an impulse                ? NS                          facts, please
+ *   new DEPTH_M HALF_LENGTH_M UNIX_S LATITUDE LONGITUDE CHANNELS   another sequence ("-": nobody knows)
+ *   n NS KIND|FIELD=VALUE|...         a note           c NS GROUP EVIDENCE END_NS    a call
+ *   u NS START_NS END_NS CHANNEL CAUSE  unheard time   r NS OUTAGE_START_NS          the program starts again
+ *   i NS TIME_NS                      an impulse       ? NS                          facts, please
  *
  * PHASE COMPLETE CREDIT_NS RELEASE HELD_BY_CONDITIONS OBSERVER CREW CONFIRMED CONTACT:CLEARS_NS ...
- */
+ *
+ * To an impulse the answer is whose it is. watch_facts light ID answers lines UNIX_S LATITUDE LONGITUDE HOURS
+ * with when it becomes light and dark: NS:LIGHT ... */
 #include "base/time.h"
 #include "rule/watch_inner.h"
 #include "support/permits.h"
@@ -99,7 +101,7 @@ static void print_rows(const struct permit *permit)
 
 static int print_permit(const struct permit *permit)
 {
-    printf("{\"id\": \"%s\", ", permit->id);
+    printf("{\"id\": \"%s\", \"explosives\": %d, ", permit->id, permit->activity == ACTIVITY_EXPLOSIVES);
     print_rows(permit);
     number("hole_minutes", permit->pre_watch_hole_minutes);
     printf("\"break_watch\": \"%s\", ", permit_break_watch_text(permit->break_watch));
@@ -116,6 +118,8 @@ static int print_permit(const struct permit *permit)
     printf("\"start\": %d, \"dark\": %d, ", permit->start.stated, (int)permit->start.dark);
     number("least_visibility", permit->start.least_visibility_m);
     number("most_sea_state", permit->start.most_sea_state);
+    number("after_sunrise", permit->start.after_sunrise_minutes);
+    number("before_sunset", permit->start.before_sunset_minutes);
     number("good_minutes", permit->start.good_watch_minutes);
     number("good_within_hours", permit->start.good_watch_within_hours);
     number("most_orders", permit->start.most_orders);
@@ -144,13 +148,14 @@ struct player {
     uint64_t counters[8];
 };
 
-static void ignore(void *context, const struct outcome *outcome)
+static void take(void *context, const struct outcome *outcome)
 {
     (void)context;
-    (void)outcome;
+    if (outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_IMPULSE)
+        printf("%s\n", impulse_whose_text(outcome->as.event.as.impulse.whose));
 }
 
-static const struct outcome_sink sink = {ignore, NULL};
+static const struct outcome_sink sink = {take, NULL};
 
 static double value_of(const char *text)
 {
@@ -159,10 +164,12 @@ static double value_of(const char *text)
 
 static bool begin(struct player *player, const char *line)
 {
-    char word[5][32];
-    if (sscanf(line, "new %31s %31s %31s %31s %31s", word[0], word[1], word[2], word[3], word[4]) != 5)
+    char word[6][32];
+    if (sscanf(line, "new %31s %31s %31s %31s %31s %31s", word[0], word[1], word[2], word[3], word[4],
+               word[5]) != 6)
         return false;
     double depth_m = value_of(word[0]), unix_s = value_of(word[2]);
+    uint32_t channels = (uint32_t)atoi(word[5]);
     permit_set_edge(&player->permit, value_of(word[1]));
     struct watch_setup setup = {.permit = &player->permit,
                                 .contact_gap_s = 300,
@@ -171,7 +178,8 @@ static bool begin(struct player *player, const char *line)
                                 .evidence_decay_s = 300,
                                 .sighting_log_spread = 0.2,
                                 .silence_s = 60,
-                                .depth_m = isnan(depth_m) ? 0 : depth_m};
+                                .depth_m = isnan(depth_m) ? 0 : depth_m,
+                                .listening = {(UINT32_C(1) << channels) - 1}};
     if (!isnan(unix_s)) {
         setup.ranges.has_source = true;
         setup.ranges.latitude_deg = value_of(word[3]);
@@ -225,23 +233,42 @@ static const struct advice_outcome *told(const struct watch *watch, const char *
 
 static bool say(struct player *player, long long at_ns)
 {
-    static struct watch_view view;
+    const struct watch *watch = player->watch;
     if (watch_advance(player->watch, at_ns, &sink) != STATUS_OK)
         return false;
-    watch_get_view(player->watch, &view);
-    const struct advice_outcome *observer = told(player->watch, "observer"),
-                                *crew = told(player->watch, "crew");
+    const struct advice_outcome *observer = told(watch, "observer"), *crew = told(watch, "crew");
     unsigned held = 0;
     struct why why;
     int64_t until_ns;
-    for (unsigned i = 0; (i = conditions_hold(player->watch, i, &why, &until_ns)) != 0;)
+    for (unsigned i = 0; (i = conditions_hold(watch, i, &why, &until_ns)) != 0;)
         held |= 1U << i;
-    printf("%d %d %lld %d %u %d %d %d", (int)view.phase, effort_complete(player->watch),
-           (long long)player->watch->effort.credit_ns, view.release_possible, held,
+    printf("%d %d %lld %d %u %d %d %d", (int)watch->phase, effort_complete(watch),
+           (long long)watch->effort.credit_ns, view_release_possible(watch), held,
            observer ? (int)observer->advice : -1, crew ? (int)crew->advice : -1, crew && crew->confirmed);
-    for (uint32_t i = view.n_contacts; i-- > 0;)
-        if (view.contacts[i].clears_at_ns >= 0)
-            printf(" %u:%lld", view.contacts[i].contact.contact, (long long)view.contacts[i].clears_at_ns);
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        const struct contact *contact = &watch->contacts.all[i];
+        int64_t clears_ns = contact_clears_at_ns(contact, watch->permit, watch->now_ns);
+        if (contact->holding && clears_ns >= 0)
+            printf(" %u:%lld", contact->number, (long long)clears_ns);
+    }
+    printf("\n");
+    return true;
+}
+
+static bool say_light(const struct permit *permit, const char *line)
+{
+    struct surroundings around;
+    long long unix_s;
+    double latitude_deg, longitude_deg, hours;
+    if (sscanf(line, "%lld %lf %lf %lf", &unix_s, &latitude_deg, &longitude_deg, &hours) != 4)
+        return false;
+    surroundings_reset(&around, permit);
+    surroundings_set_clock(&around, unix_s * TIME_NS_PER_S);
+    surroundings_set_place(&around, latitude_deg, longitude_deg);
+    for (int64_t at_ns = 0; at_ns < time_from_s(hours * 3600); at_ns = around.light_until_ns) {
+        surroundings_update(&around, at_ns);
+        printf("%s%lld:%s", at_ns ? " " : "", (long long)at_ns, surroundings_dark(&around) ? "dark" : "day");
+    }
     printf("\n");
     return true;
 }
@@ -250,6 +277,7 @@ static bool play_line(struct player *player, char *line)
 {
     struct event event = {.stream = 1};
     long long at_ns, first = 0, second = 0;
+    unsigned channel, cause;
     char group[64];
     int used = 0;
     if (line[0] == 'n' && line[1] == 'e')
@@ -264,13 +292,15 @@ static bool play_line(struct player *player, char *line)
         return say(player, at_ns);
     case 'i':
         event.kind = EVENT_IMPULSE;
-        event.as.impulse = (struct impulse){.channel = 1, .time_ns = at_ns, .peak_db = NAN, .sel_db = NAN};
+        event.as.impulse =
+            (struct impulse){.channel = 1, .time_ns = strtoll(rest, NULL, 10), .peak_db = NAN, .sel_db = NAN};
         return push(player, &event, at_ns);
     case 'u':
         event.kind = EVENT_UNHEARD;
-        if (sscanf(rest, "%lld %lld", &first, &second) != 2)
+        if (sscanf(rest, "%lld %lld %u %u", &first, &second, &channel, &cause) != 4)
             return false;
-        event.as.unheard = (struct unheard){.start_ns = first, .end_ns = second, .cause = UNHEARD_GAP};
+        event.as.unheard = (struct unheard){
+            .start_ns = first, .end_ns = second, .channel = channel, .cause = (enum unheard_cause)cause};
         return push(player, &event, at_ns);
     case 'r':
         event.kind = EVENT_RUN;
@@ -303,14 +333,13 @@ int main(int argc, char **argv)
         return 2;
     if (strcmp(argv[1], "permit") == 0)
         return print_permit(&player.permit);
+    const bool light = strcmp(argv[1], "light") == 0;
     for (unsigned n = 1; fgets(line, sizeof line, stdin); n++) {
         line[strcspn(line, "\n")] = '\0';
-        if (!play_line(&player, line)) {
+        if (!(light ? say_light(&player.permit, line) : play_line(&player, line))) {
             fprintf(stderr, "line %u cannot be played: %s\n", n, line);
             return 1;
         }
-        if (line[0] == '.')
-            fflush(stdout);
     }
     watch_destroy(player.watch);
     return 0;
