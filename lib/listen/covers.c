@@ -15,7 +15,9 @@
 #define SKIRT_RATIO 1.41  /* half an octave beside a machine's tone ... */
 #define SKIRT_DB 25.0     /* ... and so much weaker ... */
 #define SKIRT_AFTER_S 0.5 /* ... while it lasts, and so long after */
-#define SWELL_DB 5.0      /* by which noise that swells rises over its mean: (1 + 0.7)^2 */
+#define OVER_LINE_DB 30.0
+#define LINE_GOES_ON_S 60.0 /* a line that wanders is not told without a gap */
+#define SWELL_DB 5.0        /* by which noise that swells rises over its mean: (1 + 0.7)^2 */
 
 void covers_reset(struct covers *covers, const struct call_class *classes, uint32_t n_classes, double rate_hz)
 {
@@ -88,15 +90,15 @@ static bool is_skirt(const struct covers *covers, const struct found_call *sound
 }
 
 /* Stands out of noise no farther than its swelling alone might. */
-static bool is_swell(const struct covers *covers, const struct found_call *call)
+static bool is_weak(const struct covers *covers, const struct found_call *call)
 {
     const struct call_class *class = &covers->classes[call->class_index];
     double least_db = class->form == CALL_TONE ? class->tone.min_snr_db : class->train.min_snr_db;
     return call->snr_db < least_db + SWELL_DB;
 }
 
-/* What swells is told once it has, for as long again it goes on. */
-static double swells_until(const struct found_call *sound)
+/* What lasts is told once it has, for as long again it goes on. */
+static double goes_on_until(const struct found_call *sound)
 {
     return 2 * sound->end_frame - sound->start_frame;
 }
@@ -105,20 +107,31 @@ static double swells_until(const struct found_call *sound)
 static double swelling_frames(const struct covers *covers, const struct found_call *sound,
                               const struct found_call *call)
 {
-    if (call->n_pulses == 0 || !is_swell(covers, call) || !shares_rhythm(sound, call))
+    if (call->n_pulses == 0 || !is_weak(covers, call) || !shares_rhythm(sound, call))
         return 0;
-    return fmax(0, fmin(swells_until(sound), call->end_frame) - fmax(sound->start_frame, call->start_frame));
+    return fmax(0, fmin(goes_on_until(sound), call->end_frame) - fmax(sound->start_frame, call->start_frame));
 }
 
-bool covers_swells(const struct covers *covers, const struct found_call *call)
+/* The harmonics of a loud machine go on above what is recognised of them, and where their peaks come together
+ * the limiter of transients makes more of them: contours far weaker than the line that they belong to. */
+static bool is_over_line(const struct found_call *sound, const struct found_call *call)
 {
-    bool swells = false;
-    for (uint32_t i = 0; i < remembered(covers->n_sounds) && !swells; i++) {
+    return call->n_pulses == 0 && call->low_hz > sound->high_hz &&
+           call->snr_db <= sound->snr_db - OVER_LINE_DB;
+}
+
+bool covers_doubts(const struct covers *covers, const struct found_call *call)
+{
+    bool doubts = false;
+    for (uint32_t i = 0; i < remembered(covers->n_sounds) && !doubts; i++) {
         const struct found_call *sound = &covers->sounds[i];
-        swells = manner_of(covers, sound) == MANNER_BEATS && call->end_frame > sound->start_frame &&
-                 call->start_frame < swells_until(sound);
+        enum manner manner = manner_of(covers, sound);
+        double until = manner == MANNER_LINE ? sound->end_frame + LINE_GOES_ON_S * covers->rate_hz
+                                             : goes_on_until(sound);
+        doubts = (manner == MANNER_BEATS || (manner == MANNER_LINE && is_over_line(sound, call))) &&
+                 call->end_frame > sound->start_frame && call->start_frame < until;
     }
-    return swells && is_swell(covers, call);
+    return doubts && is_weak(covers, call);
 }
 
 /* Frames of the call that the sound covers. A train is as wide as its class's band: the edges of bursts and

@@ -5,7 +5,7 @@
  * it; a sound that becomes known later names the call, so that the watch takes its evidence back.
  *
  * A tone close beside a machine's and far weaker is its skirt: covered too. Noise that swells covers trains
- * of its own rhythm that barely stand out of it; on what else barely does it throws doubt (covers_swells).
+ * of its own rhythm that barely stand out of it; on what else barely does it throws doubt (covers_doubts).
  *
  * Sounds of one class come in entries of at most one in COVERS_ENTRY_S: the first at once, those that follow
  * gathered and counted. One that speaks against a call is given at once, with its own times. */
@@ -53,9 +53,9 @@ void covers_reset(struct covers *covers, const struct call_class *classes, uint3
                   double rate_hz);
 /* What an animal's call still says, in log-odds, after the sounds that are known and cover it; 0: nothing. */
 double covers_evidence(const struct covers *covers, const struct found_call *call);
-/* Whether noise that swells (a ship's cavitation) is known about the call, which stands out of it no farther
- * than the swelling may. */
-bool covers_swells(const struct covers *covers, const struct found_call *call);
+/* Whether a call that barely stands out comes while noise swells (a ship's cavitation), which rises so far by
+ * itself, or is a tone above a machine's line and 30 dB weaker than it: such a call is no evidence. */
+bool covers_doubts(const struct covers *covers, const struct found_call *call);
 /* Remembers a call that was given. */
 void covers_keep_call(struct covers *covers, const struct found_call *call, uint64_t counter);
 /* A sound that is no animal's has become known: remembers it; writes the counters of the calls given before

@@ -124,7 +124,7 @@ static double most_evidence(struct listen *listen, const struct found_call *foun
     if (class->form == CALL_TONE)
         most = fmin(most, class->evidence) *
                fmin(1, fmax(STRUCK_EVIDENCE, (found->snr_db - class->tone.min_snr_db) / SURE_DB));
-    bool doubtful = struck_begins(&listen->struck, class, found) || covers_swells(&listen->covers, found);
+    bool doubtful = struck_begins(&listen->struck, class, found) || covers_doubts(&listen->covers, found);
     return doubtful ? fmin(most, STRUCK_EVIDENCE) : most;
 }
 

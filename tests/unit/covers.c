@@ -4,7 +4,7 @@
 #include "listen/covers.h"
 
 #define RATE 48000.0
-enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, SONAR, SCREW, N_CLASSES };
+enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, SONAR, SCREW, LINE, N_CLASSES };
 
 static const struct call_class classes[N_CLASSES] = {
     [WHISTLE] = {.name = "whistle", .animal = true, .form = CALL_TONE, .evidence = 2},
@@ -13,6 +13,7 @@ static const struct call_class classes[N_CLASSES] = {
     [RAIN] = {.name = "rain", .form = CALL_NOISE, .evidence = 0},
     [SONAR] = {.name = "sonar", .form = CALL_TONE, .evidence = -5, .sound = {.manner = MANNER_BURST}},
     [SCREW] = {.name = "screw", .form = CALL_NOISE, .evidence = -5, .sound = {.manner = MANNER_BEATS}},
+    [LINE] = {.name = "line", .form = CALL_TONE, .evidence = -2, .sound = {.manner = MANNER_LINE}},
     [SOUNDER] = {.name = "sounder", .form = CALL_TRAIN, .evidence = -1},
 };
 
@@ -116,15 +117,39 @@ static void noise_that_swells_covers_its_own_rhythm(void **state)
     struct found_call clicks = sound_of(CLICKS, 8, 19, 200, 400);
     clicks.n_pulses = 18, clicks.interval_frames = RATE / 1.65, clicks.snr_db = 3;
     assert_near(covers_evidence(&covers, &clicks), 0, 0);
-    assert_true(covers_swells(&covers, &clicks));
+    assert_true(covers_doubts(&covers, &clicks));
     clicks.interval_frames = 0.77 * RATE; /* another rhythm: doubted, not withheld */
     assert_near(covers_evidence(&covers, &clicks), 3, 0);
-    assert_true(covers_swells(&covers, &clicks));
+    assert_true(covers_doubts(&covers, &clicks));
     clicks.interval_frames = RATE / 1.65, clicks.snr_db = 12;
     assert_near(covers_evidence(&covers, &clicks), 3, 0);
-    assert_false(covers_swells(&covers, &clicks));
+    assert_false(covers_doubts(&covers, &clicks));
     clicks.snr_db = 3, clicks.start_frame = 21 * RATE, clicks.end_frame = 30 * RATE;
-    assert_false(covers_swells(&covers, &clicks));
+    assert_false(covers_doubts(&covers, &clicks));
+}
+
+/* A faint tone above a thruster's line, which is 30 dB stronger, says nothing; a louder or a lower one does.
+ */
+static void harmonics_of_a_loud_line_are_doubted(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    struct found_call line = sound_of(LINE, 0, 10, 238, 241);
+    line.snr_db = 42;
+    take(&covers, line, against);
+    struct found_call call = sound_of(WHISTLE, 9, 14, 3800, 4300);
+    call.snr_db = 3;
+    assert_true(covers_doubts(&covers, &call));
+    call.snr_db = 8;
+    assert_false(covers_doubts(&covers, &call));
+    call = sound_of(WHISTLE, 9, 14, 100, 200);
+    call.snr_db = 3;
+    assert_false(covers_doubts(&covers, &call));
+    call = sound_of(WHISTLE, 71, 74, 3800, 4300);
+    call.snr_db = 3;
+    assert_false(covers_doubts(&covers, &call));
 }
 
 struct told {
@@ -172,6 +197,7 @@ int main(void)
         cmocka_unit_test(trains_are_covered_by_their_own_rhythm_only),
         cmocka_unit_test(skirts_of_a_ping_are_covered),
         cmocka_unit_test(noise_that_swells_covers_its_own_rhythm),
+        cmocka_unit_test(harmonics_of_a_loud_line_are_doubted),
         cmocka_unit_test(entries_come_at_most_every_ten_seconds),
     };
     return cmocka_run_group_tests_name("covers", tests, NULL, NULL);
