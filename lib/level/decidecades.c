@@ -42,12 +42,14 @@ struct stage {
     float *kept, *slice, *window, *tail; /* [keep + 2], [keep], [keep], [keep / 2] */
 };
 
-/* Sections of all low bands side by side, so that the compiler can take several at once. */
+typedef double four_doubles __attribute__((vector_size(32)));
+
+/* Sections of all low bands side by side, of which four are taken at once. */
 struct bank {
     uint32_t n_bands, scale;
-    double b0[FILTER_ORDER][LEVEL_MAX_BANDS], a1[FILTER_ORDER][LEVEL_MAX_BANDS];
-    double a2[FILTER_ORDER][LEVEL_MAX_BANDS];
-    double state1[FILTER_ORDER][LEVEL_MAX_BANDS], state2[FILTER_ORDER][LEVEL_MAX_BANDS];
+    double b0[FILTER_ORDER][LEVEL_MAX_BANDS + 1], a1[FILTER_ORDER][LEVEL_MAX_BANDS + 1];
+    double a2[FILTER_ORDER][LEVEL_MAX_BANDS + 1];
+    double state1[FILTER_ORDER][LEVEL_MAX_BANDS + 1], state2[FILTER_ORDER][LEVEL_MAX_BANDS + 1];
     double settled[LEVEL_MAX_BANDS]; /* samples after a reset until a band counts */
     uint64_t n_samples;              /* since the reset */
 };
@@ -284,24 +286,34 @@ static void count_frame(struct decidecades *d, const struct stage *stage)
     add_to_second(d, stage, second + 1, 1 - early / length, length - early);
 }
 
-/* One sample of the lowest rate through every low band. */
+/* One sample of the lowest rate through every low band; what is beyond n_bands has no gain. */
+LANES_WIDE static void filter_bank(struct bank *bank, double sample, double out[LEVEL_MAX_BANDS + 1])
+{
+    for (uint32_t b = 0; b < bank->n_bands; b += 4) {
+        four_doubles x = {sample, sample, sample, sample}, b0, a1, a2, s1, s2;
+        for (uint32_t k = 0; k < FILTER_ORDER; k++) {
+            memcpy(&b0, &bank->b0[k][b], sizeof b0);
+            memcpy(&a1, &bank->a1[k][b], sizeof a1);
+            memcpy(&a2, &bank->a2[k][b], sizeof a2);
+            memcpy(&s1, &bank->state1[k][b], sizeof s1);
+            memcpy(&s2, &bank->state2[k][b], sizeof s2);
+            const four_doubles in = b0 * x;
+            x = in + s1;
+            s1 = s2 - a1 * x;
+            s2 = -in - a2 * x;
+            memcpy(&bank->state1[k][b], &s1, sizeof s1);
+            memcpy(&bank->state2[k][b], &s2, sizeof s2);
+        }
+        memcpy(&out[b], &x, sizeof x);
+    }
+}
+
 static void push_bank(struct decidecades *d, float sample)
 {
     struct bank *bank = &d->bank;
     const uint32_t n = bank->n_bands;
-    double x[LEVEL_MAX_BANDS];
-    for (uint32_t b = 0; b < n; b++)
-        x[b] = sample;
-    for (uint32_t k = 0; k < FILTER_ORDER; k++) {
-        double *restrict s1 = bank->state1[k], *restrict s2 = bank->state2[k];
-        const double *restrict b0 = bank->b0[k], *restrict a1 = bank->a1[k], *restrict a2 = bank->a2[k];
-        for (uint32_t b = 0; b < n; b++) {
-            double in = b0[b] * x[b], y = in + s1[b];
-            s1[b] = s2[b] - a1[b] * y;
-            s2[b] = -in - a2[b] * y;
-            x[b] = y;
-        }
-    }
+    double x[LEVEL_MAX_BANDS + 1];
+    filter_bank(bank, sample, x);
     const uint64_t frame = d->start_frame + bank->n_samples * bank->scale;
     struct decidecade_sums *sums = &d->seconds[frame / d->rate_hz % HELD_SECONDS];
     const double count = (double)bank->n_samples;
