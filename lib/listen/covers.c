@@ -15,6 +15,8 @@
 #define SKIRT_RATIO 1.41  /* half an octave beside a machine's tone ... */
 #define SKIRT_DB 25.0     /* ... and so much weaker ... */
 #define SKIRT_AFTER_S 0.5 /* ... while it lasts, and so long after */
+#define SNAPS_BEATS 12
+#define SNAPS_LIKE_HZ 100000.0
 #define OVER_LINE_DB 30.0
 #define LINE_GOES_ON_S 60.0 /* a line that wanders is not told without a gap */
 #define SWELL_DB 5.0        /* by which noise that swells rises over its mean: (1 + 0.7)^2 */
@@ -120,18 +122,28 @@ static bool is_over_line(const struct found_call *sound, const struct found_call
            call->snr_db <= sound->snr_db - OVER_LINE_DB;
 }
 
+/* Among many snaps some fall into a rhythm for a few beats; they are as broad as dolphins' clicks, not as
+ * porpoises'. */
+static bool is_like_snaps(const struct covers *covers, const struct found_call *call)
+{
+    return call->n_pulses > 0 && call->n_pulses < SNAPS_BEATS &&
+           covers->classes[call->class_index].low_hz < SNAPS_LIKE_HZ;
+}
+
 bool covers_doubts(const struct covers *covers, const struct found_call *call)
 {
-    bool doubts = false;
+    bool doubts = false, weak = is_weak(covers, call);
     for (uint32_t i = 0; i < remembered(covers->n_sounds) && !doubts; i++) {
         const struct found_call *sound = &covers->sounds[i];
         enum manner manner = manner_of(covers, sound);
         double until = manner == MANNER_LINE ? sound->end_frame + LINE_GOES_ON_S * covers->rate_hz
                                              : goes_on_until(sound);
-        doubts = (manner == MANNER_BEATS || (manner == MANNER_LINE && is_over_line(sound, call))) &&
+        bool snaps = manner == MANNER_SNAPS && is_like_snaps(covers, call);
+        doubts = (snaps || (manner == MANNER_BEATS && weak) ||
+                  (manner == MANNER_LINE && weak && is_over_line(sound, call))) &&
                  call->end_frame > sound->start_frame && call->start_frame < until;
     }
-    return doubts && is_weak(covers, call);
+    return doubts;
 }
 
 /* Frames of the call that the sound covers. A train is as wide as its class's band: the edges of bursts and
@@ -140,6 +152,8 @@ static double covered_frames(const struct covers *covers, const struct found_cal
                              const struct found_call *call)
 {
     enum manner manner = manner_of(covers, sound);
+    if (manner == MANNER_SNAPS)
+        return 0; /* they have no rhythm; see covers_doubts */
     if (manner == MANNER_BEATS)
         return swelling_frames(covers, sound, call);
     bool edges = (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses > 0 &&

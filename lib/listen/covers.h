@@ -54,7 +54,8 @@ void covers_reset(struct covers *covers, const struct call_class *classes, uint3
 /* What an animal's call still says, in log-odds, after the sounds that are known and cover it; 0: nothing. */
 double covers_evidence(const struct covers *covers, const struct found_call *call);
 /* Whether a call that barely stands out comes while noise swells (a ship's cavitation), which rises so far by
- * itself, or is a tone above a machine's line and 30 dB weaker than it: such a call is no evidence. */
+ * itself, or is a tone above a machine's line and 30 dB weaker than it; or a train of few beats while shrimp
+ * snap: such a call is no evidence. */
 bool covers_doubts(const struct covers *covers, const struct found_call *call);
 /* Remembers a call that was given. */
 void covers_keep_call(struct covers *covers, const struct found_call *call, uint64_t counter);

@@ -4,7 +4,7 @@
 #include "listen/covers.h"
 
 #define RATE 48000.0
-enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, SONAR, SCREW, LINE, N_CLASSES };
+enum { WHISTLE, CLICKS, PING, RAIN, SOUNDER, SONAR, SCREW, LINE, SHRIMP, N_CLASSES };
 
 static const struct call_class classes[N_CLASSES] = {
     [WHISTLE] = {.name = "whistle", .animal = true, .form = CALL_TONE, .evidence = 2},
@@ -14,6 +14,7 @@ static const struct call_class classes[N_CLASSES] = {
     [SONAR] = {.name = "sonar", .form = CALL_TONE, .evidence = -5, .sound = {.manner = MANNER_BURST}},
     [SCREW] = {.name = "screw", .form = CALL_NOISE, .evidence = -5, .sound = {.manner = MANNER_BEATS}},
     [LINE] = {.name = "line", .form = CALL_TONE, .evidence = -2, .sound = {.manner = MANNER_LINE}},
+    [SHRIMP] = {.name = "shrimp", .form = CALL_TRAIN, .evidence = -1, .sound = {.manner = MANNER_SNAPS}},
     [SOUNDER] = {.name = "sounder", .form = CALL_TRAIN, .evidence = -1},
 };
 
@@ -152,6 +153,22 @@ static void harmonics_of_a_loud_line_are_doubted(void **state)
     assert_false(covers_doubts(&covers, &call));
 }
 
+/* A few beats among snaps are doubted, not withheld; a longer train is not. */
+static void few_beats_among_snaps_are_doubted(void **state)
+{
+    (void)state;
+    static struct covers covers;
+    uint64_t against[CALL_MAX_AGAINST];
+    covers_reset(&covers, classes, N_CLASSES, RATE);
+    take(&covers, sound_of(SHRIMP, 0, 11, 2000, 200000), against);
+    struct found_call clicks = sound_of(CLICKS, 12, 13, 25000, 45000);
+    clicks.n_pulses = 6, clicks.interval_frames = 0.2 * RATE, clicks.snr_db = 40;
+    assert_true(covers_doubts(&covers, &clicks));
+    assert_near(covers_evidence(&covers, &clicks), 3, 0);
+    clicks.n_pulses = 20;
+    assert_false(covers_doubts(&covers, &clicks));
+}
+
 struct told {
     uint32_t n, n_sounds;
     struct found_call last;
@@ -198,6 +215,7 @@ int main(void)
         cmocka_unit_test(skirts_of_a_ping_are_covered),
         cmocka_unit_test(noise_that_swells_covers_its_own_rhythm),
         cmocka_unit_test(harmonics_of_a_loud_line_are_doubted),
+        cmocka_unit_test(few_beats_among_snaps_are_doubted),
         cmocka_unit_test(entries_come_at_most_every_ten_seconds),
     };
     return cmocka_run_group_tests_name("covers", tests, NULL, NULL);
