@@ -70,8 +70,13 @@ function showAnswer(advice, withdrawn) {
   const button = $("acknowledge"), mine = asks ? answerOf(advice, station) : null;
   button.hidden = !asks || Boolean(mine);
   button.disabled = asks && sending === advice.id;
+  // What became of it, once it was seen: each is an answer of its own, with its own time.
+  const open = Boolean(mine && mine.answer === "seen");
+  $("next").hidden = !open;
+  $("stopped").hidden = !open || advice.advice !== "stop";
+  if (!open) $("decline").hidden = true;
   let text = problem || (asks ? "" : "Nothing to acknowledge now.");
-  if (mine) text = "Acknowledged by " + (mine.person || "?") + (mine.answer ? " (" + mine.answer + ")" : "") + " at " + utc(mine.time_s) + " UTC.";
+  if (mine && !problem) text = ANSWERED[mine.answer] + (mine.person || "?") + " at " + utc(mine.time_s) + " UTC.";
   else if (asks && !problem && advice.acknowledgements.length)
     text = advice.acknowledgements.map((answer) => answer.station).join(", ") + " acknowledged; " + station + " has not yet.";
   setText($("answered"), text);
@@ -102,7 +107,9 @@ function draw() {
   keyed($("crew_names"), names, (person) => person.name, (person) => el("option", { value: person.name }), () => {});
 }
 
-async function acknowledge() {
+const ANSWERED = { seen: "Acknowledged by ", stopped: "SOURCE STOPPED, said by ", declined: "CANNOT COMPLY, said by " };
+
+async function acknowledge(word, more = {}) {
   const advice = link.state && adviceFor(link.state, station, "crew");
   const person = $("person").value.trim();
   if (!advice) return;
@@ -115,9 +122,9 @@ async function acknowledge() {
   remember("crew." + station, person);
   sending = advice.id;
   draw();
-  const answer = await post({ kind: "acknowledgement", person, station, advice: advice.id, answer: "seen" });
+  const answer = await post({ kind: "acknowledgement", person, station, advice: advice.id, answer: word, ...more });
   if (answer.error) sending = ""; // else the button waits for the state that says so
-  problem = answer.error ? "Not acknowledged: " + answer.error : "";
+  problem = answer.error ? "Not sent: " + answer.error : "";
   draw();
 }
 
@@ -125,8 +132,18 @@ startPalette();
 startSound($("sound"));
 setText($("station"), station);
 $("person").value = remembered("crew." + station);
-$("acknowledge").addEventListener("click", acknowledge);
-$("person").addEventListener("keydown", (event) => event.key === "Enter" && acknowledge());
+$("acknowledge").addEventListener("click", () => acknowledge("seen"));
+$("person").addEventListener("keydown", (event) => event.key === "Enter" && !$("acknowledge").hidden && acknowledge("seen"));
+$("stopped").addEventListener("click", () => acknowledge("stopped"));
+$("cannot").addEventListener("click", () => {
+  $("decline").hidden = !$("decline").hidden;
+  $("cannot").setAttribute("aria-expanded", String(!$("decline").hidden));
+  if (!$("decline").hidden) $("decline").elements.rank.focus();
+});
+$("decline").addEventListener("submit", (event) => {
+  event.preventDefault();
+  acknowledge("declined", Object.fromEntries(new FormData(event.target)));
+});
 loadPermit().then((loaded) => {
   permit = loaded;
   draw();

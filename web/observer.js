@@ -6,7 +6,9 @@ import {
 import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
 import { drawLadder } from "/ladder.js";
+import { drawHandOver, startHandOver } from "/handover.js";
 import { startStrips } from "/strips.js";
+import { drawVoice, startVoice } from "/voice.js";
 import { drawResearch, drawSums, startSums } from "/sums.js";
 
 const alertSound = new Alarm(20);
@@ -48,14 +50,19 @@ function drawCrew(state) {
   const crew = adviceFor(state, "crew"), asks = Boolean(crew && adviceWords(crew.advice).alert);
   const countdown = state.contacts.filter((c) => c.state === "open" && c.countdown_ends_s !== null && c.countdown_ends_s > watchNow());
   const lines = [{ key: "advice", text: crew ? crew.advice + (asks ? "" : ", shown") : "nothing shown" }];
-  for (const { station, answer } of asks ? stationAnswers(state, site, crew) : [])
-    lines.push({ key: "at " + station, missing: !answer, text: station + ": " + (answer ? `acknowledged by ${answer.person} (${answer.answer}) ${utc(answer.time_s)}` : "NOT ACKNOWLEDGED") });
+  for (const { station, answer, voice } of asks ? stationAnswers(state, site, crew) : []) {
+    const said = answer ? `${ANSWERS[answer.answer]} by ${answer.person} ${utc(answer.time_s)}` : "NOT ACKNOWLEDGED";
+    lines.push({ key: "at " + station, missing: !answer && !voice, text: `${station}: ${said}` + (voice ? `, passed by voice ${utc(voice.time_s)}` : "") });
+  }
+  drawVoice(asks ? crew : null, site ? site.stations : []);
   if (countdown.length) lines.push({ key: "countdown", text: "contact " + countdown[0].contact + " goes to the crew in " + span(countdown[0].countdown_ends_s - watchNow()) });
   keyed($("crew"), lines, (line) => line.key, () => el("span"), (node, line) => {
     setText(node, line.text);
     node.classList.toggle("missing", Boolean(line.missing));
   });
 }
+
+const ANSWERS = { seen: "acknowledged", stopped: "SOURCE STOPPED, said", declined: "DECLINED" };
 
 function drawPhase(state) {
   const phase = state.phase;
@@ -187,7 +194,7 @@ function sounds(state, advice, withdrawn, found) {
   const words = advice && !withdrawn ? adviceWords(advice.advice) : null;
   const crew = adviceFor(state, "crew");
   const stations = stationAnswers(state, site, crew); // every one with somebody on watch has answered, and at least one
-  const answered = stations.some((s) => s.answer) && stations.every((s) => s.answer || !s.manned);
+  const answered = stations.some((s) => s.answer || s.voice) && stations.every((s) => s.answer || s.voice || !s.manned);
   const wants = words && words.alert && !answered;
   alertSound.set(wants ? advice.id : "", words && words.level === "stop" ? "stop" : words && words.level === "hold" ? "hold" : "go", !words || words.level === "go" || advice.advice === "do not start");
   faultSound.set(found.filter((fault) => fault.grave).map((fault) => fault.code).join(), "fault");
@@ -208,6 +215,7 @@ function draw() {
   drawPhase(state);
   drawPlan(state);
   drawPeople(state);
+  drawHandOver(state, site);
   drawSource(state);
   drawHearing(state);
   drawOtherSounds(state);
@@ -243,6 +251,8 @@ startPalette();
 startSound($("sound"));
 startForms();
 startStrips();
+startVoice();
+startHandOver();
 startSums(draw);
 loadPermit().then((loaded) => {
   site = loaded;

@@ -246,15 +246,18 @@ export function adviceFor(state, ...stations) {
   return null;
 }
 
-/** What a crew station answered to an advice, or null: each station acknowledges for itself. */
+/** What a crew station itself answered to an advice, or null; what was passed to it by voice. */
 export function answerOf(advice, station) {
-  return (advice && advice.acknowledgements.find((answer) => answer.station === station)) || null;
+  return (advice && advice.acknowledgements.find((answer) => answer.station === station && answer.answer !== "passed")) || null;
+}
+export function voiceTo(advice, station) {
+  return (advice && advice.acknowledgements.find((answer) => answer.station === station && answer.answer === "passed")) || null;
 }
 /** Every crew station that should answer or has: of the settings, of people on watch, of answers. */
 export function stationAnswers(state, site, advice) {
   const crew = state.people.filter((person) => person.watch === "crew").map((person) => person.station);
   const names = [...(site ? site.stations : []), ...crew, ...(advice ? advice.acknowledgements.map((answer) => answer.station) : [])];
-  return [...new Set(names.filter(Boolean))].map((station) => ({ station, answer: answerOf(advice, station), manned: crew.includes(station) }));
+  return [...new Set(names.filter(Boolean))].map((station) => ({ station, answer: answerOf(advice, station), voice: voiceTo(advice, station), manned: crew.includes(station) }));
 }
 
 // ---- notes

@@ -152,7 +152,7 @@ static bool is_recorded(const struct hearing_view *hearing, const char *id)
     return true;
 }
 
-_Static_assert(WATCH_MAX_ACKNOWLEDGEMENTS >= SITE_MAX_STATIONS, "each station's answer has a place");
+_Static_assert(WATCH_MAX_ACKNOWLEDGEMENTS >= 2 * SITE_MAX_STATIONS, "each station's answer has a place");
 
 /* One a crew station: each answers for itself. */
 static void acknowledgements(struct text *text, const struct watch_advice *shown)
@@ -319,9 +319,28 @@ static void people(struct text *text, const struct watch_view *watch)
     text_append(text, "]");
 }
 
+static void checks(struct text *text, const struct watch_view *watch)
+{
+    json_name(text, "checks");
+    text_append(text, "[");
+    for (uint32_t i = 0; i < watch->n_checks; i++) {
+        const struct watch_check *check = &watch->checks[i];
+        json_next(text);
+        text_append(text, "{");
+        json_text(text, "check", check->check);
+        json_text(text, "station", check->station);
+        json_text(text, "person", check->person);
+        json_flag(text, "good", check->good);
+        json_time(text, "time_s", check->known_ns);
+        text_append(text, "}");
+    }
+    text_append(text, "]");
+}
+
 void board_json_watch(struct text *text, const struct watch_view *watch)
 {
     timers(text, watch);
+    checks(text, watch);
     plan_object(text, &watch->plan);
     people(text, watch);
     json_number(text, "n_impulses", watch->n_impulses, 0);

@@ -7,7 +7,8 @@
 
 #define KINDS_ALLOWED                                                                                        \
     "sign-on, sign-off, sighting, distance, verdict, release, acknowledgement, source state, job, weather, " \
-    "quieting, deterrent, safety override, plan, answer to a finding, other source, whose, position, mark, " \
+    "quieting, deterrent, safety override, plan, answer to a finding, other source, whose, position, "       \
+    "check, hand-over, mark, "                                                                               \
     "remark"
 
 __attribute__((format(printf, 4, 5))) static enum status

@@ -103,7 +103,8 @@ const struct schema_object views_schema[] = {
         COLUMN("minutes") COLUMN("energy_kj") COLUMN("elements") COLUMN("reason")
         COLUMN("job_kind") COLUMN("leg") COLUMN("hammer") COLUMN("sequence") COLUMN("blows")
         COLUMN("first_point") COLUMN("last_point") COLUMN("charge_kg") COLUMN("donor_kg") COLUMN("refusal") COLUMN("planned_s") COLUMN("finding")
-        COLUMN("restrike") COLUMN("account")),
+        COLUMN("restrike") COLUMN("account") COLUMN("rank") COLUMN("check") COLUMN("cable_m")
+        COLUMN("hydrophone_depth_m") COLUMN("offset_m")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
         COLUMN("end_s") COLUMN("cause")),

@@ -25,6 +25,8 @@ static const char *const kind_words[NOTE_KIND_COUNT] = {
     [NOTE_ANSWER] = "answer to a finding",
     [NOTE_WHOSE] = "whose",
     [NOTE_POSITION] = "position",
+    [NOTE_CHECK] = "check",
+    [NOTE_HAND_OVER] = "hand-over",
     [NOTE_MARK] = "mark",
     [NOTE_REMARK] = "remark",
     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
@@ -34,8 +36,11 @@ static const char *const watch_words[] = {"visual", "acoustic", "crew", NULL};
 static const char *const verdict_words[] = {"confirm", "dismiss", "left", NULL};
 static const char *const job_words[] = {"pile", "line", "test", "charge", NULL};
 static const char *const reason_words[] = {"life", "refusal", "instability", NULL};
-static const char *const answer_words[] = {"seen",  "passed", "stopped", "declined", "open",  "begin", "end",
-                                           "close", "on",     "off",     "ours",     "other", NULL};
+static const char *const answer_words[] = {"seen", "passed", "stopped", "declined", "open", "begin",
+                                           "end",  "close",  "on",      "off",      "ours", "other",
+                                           "good", "bad",    "gives",   "takes",    NULL};
+static const char *const check_words[] = {"clock",       "array", "channels", "noise",
+                                          "field check", "radio", "sound",    NULL};
 static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
@@ -59,11 +64,13 @@ static const struct note_field fields[] = {
     {WORD(answer, answer_words),
      .allowed = "seen, passed, stopped, declined (acknowledgement); open, begin, end, close "
                 "(job); on, off (quieting, deterrent, other source); "
-                "ours, other (whose)"},
+                "ours, other (whose); good, bad (check); gives, takes (hand-over)"},
     {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
     {NUMBER(blows, 0, 100000, 0), .allowed = "0 to 100000 blows"},
+    {NUMBER(cable_m, 0, 20000, ROUND_DECIMALS_M), .allowed = "0 to 20000 m"},
     {OTHER(calf, NOTE_FORM_FLAG), .allowed = "true, false"},
     {NUMBER(charge_kg, 0, 10000, 3), .allowed = "0 to 10000 kg"},
+    {WORD(check, check_words), .allowed = "clock, array, channels, noise, field check, radio, sound"},
     {OTHER(contact, NOTE_FORM_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
     {NUMBER(depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
     {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
@@ -76,6 +83,7 @@ static const struct note_field fields[] = {
      .allowed = "unknown, baleen whale, sperm whale, beaked whale, delphinid, porpoise, phocid, otariid, "
                 "sirenian, sea otter, turtle"},
     {TEXT(hammer), .allowed = NAME_ALLOWED},
+    {NUMBER(hydrophone_depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
     {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
     {.name = "job",
      .form = NOTE_FORM_TEXT,
@@ -92,8 +100,10 @@ static const struct note_field fields[] = {
     {NUMBER(minutes, 0, 10080, 2), .allowed = "0 to 10080 minutes"},
     {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
     {OTHER(occurred_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
+    {NUMBER(offset_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
     {TEXT(person), .allowed = NAME_ALLOWED},
     {OTHER(planned_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
+    {TEXT(rank), .allowed = NAME_ALLOWED},
     {WORD(reason, reason_words), .allowed = "life, refusal, instability"},
     {OTHER(refusal, NOTE_FORM_FLAG), .allowed = "true, false"},
     {OTHER(restrike, NOTE_FORM_FLAG), .allowed = "true, false"},
@@ -236,7 +246,10 @@ static const char *missing_of_answer(const struct note *note)
                   strcmp(note->answer, "begin") == 0 || strcmp(note->answer, "end") == 0;
     bool of_quieting = strcmp(note->answer, "on") == 0 || strcmp(note->answer, "off") == 0;
     bool of_whose = strcmp(note->answer, "ours") == 0 || strcmp(note->answer, "other") == 0;
-    bool good = *note->answer && of_job == (note->kind == NOTE_JOB) &&
+    bool of_check = strcmp(note->answer, "good") == 0 || strcmp(note->answer, "bad") == 0;
+    bool of_hand_over = strcmp(note->answer, "gives") == 0 || strcmp(note->answer, "takes") == 0;
+    bool good = *note->answer && of_check == (note->kind == NOTE_CHECK) &&
+                of_hand_over == (note->kind == NOTE_HAND_OVER) && of_job == (note->kind == NOTE_JOB) &&
                 of_quieting == (note->kind == NOTE_QUIETING || note->kind == NOTE_OTHER ||
                                 note->kind == NOTE_DETERRENT || note->kind == NOTE_OVERRIDE) &&
                 of_whose == (note->kind == NOTE_WHOSE);
@@ -273,6 +286,10 @@ static const char *missing_of(const struct note *note)
                : !*note->station ? "station"
                : !*note->advice  ? "advice"
                                  : missing_of_answer(note);
+    case NOTE_CHECK:
+        return !person ? "person" : !*note->check ? "check" : missing_of_answer(note);
+    case NOTE_HAND_OVER:
+        return !person ? "person" : missing_of_answer(note);
     case NOTE_SOURCE:
         return !*note->source_state ? "source_state" : NULL;
     case NOTE_PLAN:

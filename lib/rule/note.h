@@ -18,8 +18,9 @@ enum note_kind {
     NOTE_DISTANCE,        /* person, contact, distance_m, [bearing_deg leaving] */
     NOTE_VERDICT,         /* person, contact, verdict (confirm | dismiss | left), text = reason */
     NOTE_RELEASE,         /* person: the named observer allows the start */
-    NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer (seen | passed | stopped | declined) [text]
-                           */
+    NOTE_ACKNOWLEDGEMENT, /* person, station, advice (id), answer: seen, stopped or declined at the station
+                             itself (declined: rank, text = reason); passed by the observer's voice (text: to
+                             whom) */
     NOTE_SOURCE,  /* source_state (off | soft start | full power | hold | reduced | stopped | vibro ...) */
     NOTE_JOB,     /* job, answer (open | begin | end | close): begin and end of a line between open and close;
                      with open what it is: job_kind and the fields from leg on */
@@ -34,9 +35,13 @@ enum note_kind {
     NOTE_WHOSE,     /* person, impulse (id), answer (ours | other): whose the train of that impulse is, from
                        occurred_ns on; all of it in the job where that is not given */
     NOTE_POSITION,  /* latitude_deg, longitude_deg of the source */
-    NOTE_OTHER,  /* text (name of another source in the settings), answer (on | off): whether it is at work */
-    NOTE_MARK,   /* text */
-    NOTE_REMARK, /* text */
+    NOTE_OTHER, /* text (name of another source in the settings), answer (on | off): whether it is at work */
+    NOTE_CHECK, /* person, check (what of the watch was checked), answer (good | bad), [station text cable_m
+                   hydrophone_depth_m offset_m] */
+    NOTE_HAND_OVER, /* person, answer (gives | takes), [text]: the watch goes from one to another, both sign
+                     */
+    NOTE_MARK,      /* text */
+    NOTE_REMARK,    /* text */
     NOTE_KIND_COUNT
 };
 
@@ -58,6 +63,8 @@ struct note {
     char finding[NOTE_NAME_SIZE];
     char source_state[NOTE_NAME_SIZE];
     char reason[NOTE_NAME_SIZE];
+    char rank[NOTE_NAME_SIZE];  /* of who declines */
+    char check[NOTE_NAME_SIZE]; /* "clock", "array", "channels", "noise", "field check", "radio", "sound" */
     char text[NOTE_TEXT_SIZE];
     /* Of a job: a pile's leg, hammer and blows by the driver's count; a line's sequence and shot points; a
      * charge's and its donor's weight. energy_kj is the planned one. */
@@ -72,7 +79,9 @@ struct note {
     double bearing_deg;
     double sea_state;
     double visibility_m;
-    double depth_m;                     /* of the water at the source */
+    double depth_m; /* of the water at the source */
+    double cable_m, hydrophone_depth_m,
+        offset_m;                       /* of the array: cable out, depth, distance from the source */
     double minutes;                     /* how long something is expected to last, or lasted */
     double energy_kj;                   /* of the hammer */
     double elements;                    /* of the array that are active */

@@ -18,7 +18,9 @@
 #define WATCH_MAX_CONTACTS 64
 #define WATCH_MAX_ADVICE 32
 #define WATCH_MAX_STREAMS 8
-#define WATCH_MAX_ACKNOWLEDGEMENTS 10 /* of one advice: a station's newest replaces its former */
+#define WATCH_MAX_ACKNOWLEDGEMENTS                                                                           \
+    18 /* of one advice: a station's newest replaces its former, as does voice */
+#define WATCH_MAX_CHECKS 20
 
 struct watch_setup {
     const struct permit *permit; /* borrowed for the life of the watch */
@@ -113,9 +115,22 @@ struct watch_advice {
     bool acknowledged; /* by anybody; the newest: */
     char acknowledged_by[NOTE_NAME_SIZE];
     char answer[NOTE_NAME_SIZE];
-    uint32_t n_acknowledgements; /* one a station */
+    uint32_t n_acknowledgements; /* of a station one of its own and one of the observer's voice */
     struct watch_acknowledgement acknowledgements[WATCH_MAX_ACKNOWLEDGEMENTS];
 };
+
+/* Puts an acknowledgement into what is shown of its advice. */
+void watch_advice_answer(struct watch_advice *advice, const struct note *note, int64_t now_ns);
+
+/* Of the start of a watch: what was checked last, by whom. */
+struct watch_check {
+    char check[NOTE_NAME_SIZE], station[NOTE_NAME_SIZE], person[NOTE_NAME_SIZE];
+    bool good;
+    int64_t known_ns;
+};
+
+/* Puts a check into the list of WATCH_MAX_CHECKS, in place of the former one of its kind and station. */
+void watch_check_put(struct watch_check *checks, uint32_t *n, const struct note *note, int64_t now_ns);
 
 #define PLAN_MAX_STEPS 12
 
@@ -153,6 +168,8 @@ struct watch_view {
     struct watch_timer timers[WATCH_MAX_TIMERS];
     uint32_t n_people;
     struct watch_person people[WATCH_MAX_PEOPLE];
+    uint32_t n_checks; /* the last of each check and station */
+    struct watch_check checks[WATCH_MAX_CHECKS];
     uint32_t n_contacts; /* newest first */
     struct watch_contact contacts[WATCH_MAX_CONTACTS];
     uint32_t n_advice; /* newest first; the one in force for a station is its first with in_force */

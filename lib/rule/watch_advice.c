@@ -345,13 +345,20 @@ void advice_settle(struct watch *watch)
     settle_station(watch, STATION_CREW);
 }
 
-static void record_answer(struct watch_advice *advice, const struct note *note, int64_t now_ns)
+/* What the observer's voice did is not the station's own answer, and stands beside it. */
+static bool is_of(const struct watch_acknowledgement *answer, const struct note *note)
+{
+    bool voice = strcmp(note->answer, "passed") == 0;
+    return strcmp(answer->station, note->station) == 0 && (strcmp(answer->answer, "passed") == 0) == voice;
+}
+
+void watch_advice_answer(struct watch_advice *advice, const struct note *note, int64_t now_ns)
 {
     advice->acknowledged = true;
     memcpy(advice->acknowledged_by, note->person, sizeof advice->acknowledged_by);
     memcpy(advice->answer, note->answer, sizeof advice->answer);
     uint32_t i = 0;
-    while (i < advice->n_acknowledgements && strcmp(advice->acknowledgements[i].station, note->station) != 0)
+    while (i < advice->n_acknowledgements && !is_of(&advice->acknowledgements[i], note))
         i++;
     if (i == WATCH_MAX_ACKNOWLEDGEMENTS)
         i--;
@@ -370,7 +377,7 @@ void advice_acknowledge(struct watch *watch, const struct note *note)
         struct watch_advice *advice = &watch->advice[i];
         if (strcmp(advice->id, note->advice) != 0)
             continue;
-        record_answer(advice, note, watch->now_ns);
+        watch_advice_answer(advice, note, watch->now_ns);
         if (strcmp(note->answer, "declined") == 0) {
             struct why why;
             why_reset(&why, advice->advice.clause, "%.60s (%.60s) declines '%s': %.80s", note->person,

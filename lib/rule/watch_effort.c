@@ -116,6 +116,27 @@ void effort_sign_off(struct watch *watch, const struct note *note)
                         note->watch);
 }
 
+void watch_check_put(struct watch_check *checks, uint32_t *n, const struct note *note, int64_t now_ns)
+{
+    uint32_t i = 0;
+    while (i < *n &&
+           (strcmp(checks[i].check, note->check) != 0 || strcmp(checks[i].station, note->station) != 0))
+        i++;
+    if (i == WATCH_MAX_CHECKS) { /* a station too many: the check that is oldest makes room */
+        i = 0;
+        for (uint32_t k = 1; k < WATCH_MAX_CHECKS; k++)
+            if (checks[k].known_ns < checks[i].known_ns)
+                i = k;
+    }
+    if (i == *n)
+        ++*n;
+    memcpy(checks[i].check, note->check, sizeof checks[i].check);
+    memcpy(checks[i].station, note->station, sizeof checks[i].station);
+    memcpy(checks[i].person, note->person, sizeof checks[i].person);
+    checks[i].good = strcmp(note->answer, "good") == 0;
+    checks[i].known_ns = now_ns;
+}
+
 int64_t effort_needed_ns(const struct watch *watch)
 {
     return time_from_s(effort_pre_watch(watch)->minutes * 60);

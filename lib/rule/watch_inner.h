@@ -37,6 +37,8 @@ struct why {
 struct effort {
     uint32_t n_people;
     struct watch_person people[WATCH_MAX_PEOPLE];
+    uint32_t n_checks;
+    struct watch_check checks[WATCH_MAX_CHECKS];
     bool outage;       /* the program is not running */
     bool accruing;     /* since from_ns */
     int64_t from_ns;   /* of the present stretch */

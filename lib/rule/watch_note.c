@@ -158,6 +158,10 @@ void note_take(struct watch *watch, const struct note *note)
     case NOTE_POSITION:
         take_position(watch, note);
         break;
+    case NOTE_CHECK:
+        watch_check_put(watch->effort.checks, &watch->effort.n_checks, note, watch->now_ns);
+        break;
+    case NOTE_HAND_OVER:
     case NOTE_WEATHER:
     case NOTE_DETERRENT:
     case NOTE_OVERRIDE:

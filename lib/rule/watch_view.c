@@ -104,6 +104,8 @@ void watch_get_view(const struct watch *watch, struct watch_view *out)
     conditions_show(watch, out);
     out->n_people = watch->effort.n_people;
     memcpy(out->people, watch->effort.people, sizeof out->people);
+    out->n_checks = watch->effort.n_checks;
+    memcpy(out->checks, watch->effort.checks, sizeof out->checks);
     out->n_contacts = watch->contacts.n;
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[watch->contacts.n - 1 - i];

@@ -301,34 +301,16 @@ static void obey(struct server *server, const char *word)
         make_hostile(server);
 }
 
-/* A station's answer takes the place of its former one. */
-static void acknowledge(struct watch_advice *advice, const struct note *note, int64_t now_ns)
-{
-    advice->acknowledged = true;
-    snprintf(advice->acknowledged_by, NOTE_NAME_SIZE, "%s", note->person);
-    snprintf(advice->answer, NOTE_NAME_SIZE, "%s", note->answer);
-    uint32_t i = 0;
-    while (i < advice->n_acknowledgements && strcmp(advice->acknowledgements[i].station, note->station) != 0)
-        i++;
-    if (i == WATCH_MAX_ACKNOWLEDGEMENTS)
-        return;
-    if (i == advice->n_acknowledgements)
-        advice->n_acknowledgements++;
-    struct watch_acknowledgement *answer = &advice->acknowledgements[i];
-    answer->known_ns = now_ns;
-    snprintf(answer->station, NOTE_NAME_SIZE, "%s", note->station);
-    snprintf(answer->person, NOTE_NAME_SIZE, "%s", note->person);
-    snprintf(answer->answer, NOTE_NAME_SIZE, "%s", note->answer);
-}
-
 static void apply_note(struct server *server, const struct note *note)
 {
     struct watch_view *view = &server->watch;
     if (note->kind == NOTE_SIGN_ON)
         add_person(server, note->person, note->watch, note->station);
+    if (note->kind == NOTE_CHECK)
+        watch_check_put(view->checks, &view->n_checks, note, view->watch_ns);
     for (uint32_t i = 0; i < view->n_advice && note->kind == NOTE_ACKNOWLEDGEMENT; i++)
         if (strcmp(view->advice[i].id, note->advice) == 0)
-            acknowledge(&view->advice[i], note, view->watch_ns);
+            watch_advice_answer(&view->advice[i], note, view->watch_ns);
     for (uint32_t i = 0; i < view->n_contacts; i++) {
         struct watch_contact *contact = &view->contacts[i];
         if (contact->contact.contact != note->contact)

@@ -117,6 +117,8 @@ static void every_kind_says_what_it_misses(void **state)
         {NOTE_JOB, {{"job", "A1"}, {"answer", "open"}}},
         {NOTE_WEATHER, {{"sea_state", "3"}}},
         {NOTE_WEATHER, {{"visibility_m", "3000"}}},
+        {NOTE_CHECK, {{"person", "A"}, {"check", "radio"}, {"answer", "good"}}},
+        {NOTE_HAND_OVER, {{"person", "A"}, {"answer", "gives"}}},
         {NOTE_MARK, {{"text", "x"}}},
         {NOTE_REMARK, {{"text", "x"}}},
     };
