@@ -18,7 +18,7 @@ struct trigger {
     const struct pulse_search *search;
     const struct call_class *call_class;
     bool ties_own; /* the class states in what time its sound repeats itself */
-    double echo_frames, tail_frames, apart_frames;
+    double echo_frames, tail_frames, apart_frames, reach_frames;
     struct pulse_shaper *shaper;
     /* What came within an echo time of the first, in order of arrival. */
     struct search_found held[HELD];
@@ -40,6 +40,7 @@ enum status trigger_create(const struct call_class *call_class, const struct pul
     trigger->echo_frames = trigger_get_echo(call_class) * input_rate_hz;
     trigger->tail_frames = call_class->train.tail_s * input_rate_hz;
     trigger->apart_frames = APART_PULSES * call_class->train.pulse_s * input_rate_hz;
+    trigger->reach_frames = PULSE_SHAPE_REACH_S * input_rate_hz;
     trigger->call_class = call_class;
     trigger->ties_own = call_class->train.echo_s > 0;
     enum status status =
@@ -95,13 +96,19 @@ static bool ties_all(const struct trigger *trigger, uint32_t i)
            (trigger->held[i].too_long && !train_is_narrow(&trigger->pulses[i], &trigger->call_class->train));
 }
 
-/* An echo of what is no pulse of the class is none either. */
+/* An echo of what is no pulse of the class is none either. What is far weaker, and farther from it than the
+ * pulses of one sound are, is none where it comes first, and where it comes after must look more like it than
+ * not: so weak a one says little of what it looks like. */
 static bool is_echo_of(const struct trigger *trigger, uint32_t i, uint32_t of)
 {
     const struct pulse *pulse = &trigger->pulses[i], *other = &trigger->pulses[of];
-    return trigger->ties_own || fabs(pulse->frame - other->frame) < trigger->apart_frames ||
-           (pulse->foreign == other->foreign &&
-            pulse_shape_alike_spectra(&pulse->shape, &other->shape) > UNLIKE);
+    double later = pulse->frame - other->frame;
+    bool far_weaker = pulse->snr * FALL < other->snr && fabs(later) > trigger->reach_frames;
+    if (trigger->ties_own || fabs(later) < trigger->apart_frames)
+        return true;
+    if (pulse->foreign != other->foreign || (far_weaker && later < 0))
+        return false;
+    return pulse_shape_alike_spectra(&pulse->shape, &other->shape) > (far_weaker ? 0 : UNLIKE);
 }
 
 /* Gives those held of which each is the strongest that looks so: the rest are their echoes. What was rejected
