@@ -5,10 +5,6 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* Of the pulses around that are of no train yet, this share counts as strays where chains are only compared:
- * the rest may be the chain's own. */
-#define RANK_SHARE 0.5
-
 double trains_fit_level(double difference_db, double spread_db)
 {
     double scaled = difference_db / spread_db;
@@ -39,7 +35,9 @@ static void look_around(struct trains *trains, struct node *node)
     double rate = sum / fmax(span_s, trains->call_class.train.min_interval_s);
     double least_snr = units_power_ratio(trains->call_class.train.min_snr_db);
     double noise = noise_rate_competing(&trains->noise, node->pulse.snr, least_snr, STEADY_DEVIATION_DB);
-    node->ln_rate = log(fmax(RANK_SHARE * rate, noise) + RATE_FLOOR);
+    node->ln_fewest =
+        log(noise + 1 / (RATE_INTERVALS * trains->call_class.train.max_interval_s) + RATE_FLOOR);
+    node->ln_rate = log(fmax(rate, noise) + RATE_FLOOR);
 }
 
 /* Takes a link into a pulse's list, which keeps the best few. */
@@ -67,7 +65,6 @@ static void add_likeness(struct link *link, double likeness)
     link->gain += fmin(0, likeness);
     link->score[NARROW] += fmin(0, likeness);
     link->score[WIDE] += fmin(0, likeness);
-    link->rank += likeness;
 }
 
 static double ln_density(const struct trains *trains, int spread, double d)
@@ -98,7 +95,13 @@ static struct link first_pair(uint64_t number, const struct node *from, const st
                          .gain = score,
                          .score = {score, score},
                          .ln_rates = from->ln_rate + node->ln_rate,
+                         .ln_fewest = from->ln_fewest + node->ln_fewest,
                          .rank = score - from->ln_rate - node->ln_rate};
+}
+
+static double level_cost(double change_db)
+{
+    return change_db * change_db / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
 }
 
 /* How many of the m - 1 beats that were missed after `from` the own source covers, or its echo: nobody could
@@ -132,53 +135,78 @@ static uint32_t choose_steps(const struct trains *trains, const struct node *fro
     return best;
 }
 
-/* The best chain that reaches `node` from pulse `number`, a pair of its own or the extension of one. */
+/* What a chain that ends with pulse `number` becomes when `node` follows, its rank and their likeness left
+ * out; false where it may not. */
+static bool extend(const struct trains *trains, const struct node *node, uint64_t number, uint32_t index,
+                   struct link *out)
+{
+    const struct train_shape *shape = &trains->call_class.train;
+    const struct node *from = trains_node(trains, number);
+    const struct link *link = &from->links[index];
+    double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
+    double ln_interval = log(interval), ratio = ln_interval - link->ln_interval, ln_steps = 0;
+    uint32_t m = choose_steps(trains, from, interval, ratio, &ln_steps);
+    double d = ratio - trains->ln_m[m];
+    double step_s = interval / m; /* a chain may drift, but not out of its class */
+    if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
+        step_s > shape->max_interval_s)
+        return false;
+    double common = ln_steps - ln_interval - level_cost(change);
+    double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
+    *out = (struct link){.previous = number,
+                         .previous_link = index,
+                         .first = link->first,
+                         .first_time_s = link->first_time_s,
+                         .train = link->train,
+                         .n = link->n + 1,
+                         .steps = m,
+                         .ln_interval = ln_interval - trains->ln_m[m],
+                         .ln_ratio = d,
+                         .gain = fmax(gain[NARROW], gain[WIDE]),
+                         .score = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]},
+                         .ln_rates = link->ln_rates + node->ln_rate,
+                         .ln_fewest = link->ln_fewest + node->ln_fewest,
+                         .alike = link->alike};
+    return true;
+}
+
+static double rank_of(const struct link *link, int spread)
+{
+    return link->score[spread] + link->alike - link->ln_rates;
+}
+
+/* The best chains that reach `node` from pulse `number`, pairs of their own or extensions: for either spread
+ * one, since what is best by the wide one says nothing of where a steady rhythm began. */
 static void link_from(const struct trains *trains, struct node *node, uint64_t number, double likeness)
 {
     const struct train_shape *shape = &trains->call_class.train;
     const struct node *from = trains_node(trains, number);
-    double interval = node->time_s - from->time_s, change = node->level_db - from->level_db;
-    double ln_interval = log(interval);
-    double cost = change * change / (2.0 * LEVEL_DEVIATION_DB * LEVEL_DEVIATION_DB);
-    struct link best = {.rank = -INFINITY};
-    if (interval <= shape->max_interval_s && from->owner == 0)
-        best = first_pair(number, from, node, ln_interval, -ln_interval - trains->ln_range - cost);
-    for (uint32_t i = 0; i < from->n_links; i++) {
-        const struct link *link = &from->links[i];
-        if (from->owner && link->train != from->owner)
-            continue;
-        double ratio = ln_interval - link->ln_interval;
-        double ln_steps = 0;
-        uint32_t m = choose_steps(trains, from, interval, ratio, &ln_steps);
-        double d = ratio - trains->ln_m[m];
-        double step_s = interval / m; /* a chain may drift, but not out of its class */
-        if (fabs(d) > GATE_DEVIATIONS * trains->deviation[WIDE] || step_s < shape->min_interval_s ||
-            step_s > shape->max_interval_s)
-            continue;
-        double common = ln_steps - ln_interval - cost;
-        double gain[2] = {ln_density(trains, NARROW, d) + common, ln_density(trains, WIDE, d) + common};
-        double score[2] = {link->score[NARROW] + gain[NARROW], link->score[WIDE] + gain[WIDE]};
-        double rank = fmax(score[NARROW], score[WIDE]) + link->alike - link->ln_rates - node->ln_rate;
-        if (rank <= best.rank)
-            continue;
-        best = (struct link){.previous = number,
-                             .previous_link = i,
-                             .first = link->first,
-                             .first_time_s = link->first_time_s,
-                             .train = link->train,
-                             .n = link->n + 1,
-                             .steps = m,
-                             .ln_interval = ln_interval - trains->ln_m[m],
-                             .ln_ratio = d,
-                             .gain = fmax(gain[NARROW], gain[WIDE]),
-                             .score = {score[NARROW], score[WIDE]},
-                             .ln_rates = link->ln_rates + node->ln_rate,
-                             .alike = link->alike,
-                             .rank = rank};
+    double interval = node->time_s - from->time_s, ln_interval = log(interval);
+    struct link best[2], next;
+    double rank[2] = {-INFINITY, -INFINITY};
+    if (interval <= shape->max_interval_s && from->owner == 0) {
+        double cost = level_cost(node->level_db - from->level_db);
+        best[NARROW] = best[WIDE] =
+            first_pair(number, from, node, ln_interval, -ln_interval - trains->ln_range - cost);
+        rank[NARROW] = rank[WIDE] = best[WIDE].rank;
     }
-    if (best.rank > -INFINITY) {
-        add_likeness(&best, likeness);
-        keep(node, &best);
+    for (uint32_t i = 0; i < from->n_links; i++) {
+        if ((from->owner && from->links[i].train != from->owner) || !extend(trains, node, number, i, &next))
+            continue;
+        for (int spread = NARROW; spread <= WIDE; spread++)
+            if (rank_of(&next, spread) > rank[spread]) {
+                rank[spread] = rank_of(&next, spread);
+                best[spread] = next;
+            }
+    }
+    if (rank[WIDE] == -INFINITY)
+        return;
+    bool same = best[NARROW].n == best[WIDE].n && best[NARROW].previous_link == best[WIDE].previous_link;
+    for (int spread = same ? WIDE : NARROW; spread <= WIDE; spread++) {
+        struct link *link = &best[spread];
+        add_likeness(link, likeness);
+        link->rank = fmax(rank_of(link, NARROW), rank_of(link, WIDE));
+        keep(node, link);
     }
 }
 

@@ -5,8 +5,6 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define FEWEST_SHARE 0.4 /* of the rate by which chains are compared: surely too low */
-
 /* Pulses that compete with a chain: within its time all that are not its own; before, all of no train (a
  * train that was given is no chance). */
 struct competitors { /* counted in competing[] */
@@ -168,6 +166,6 @@ uint32_t trains_find_certain(struct trains *trains, uint32_t n, uint32_t least)
 bool trains_may_be_certain(const struct trains *trains, const struct link *link)
 {
     double judged = fmin(1, JUDGED_PULSES / (double)link->n);
-    double score = fmax(link->score[NARROW], link->score[WIDE]) + link->alike - link->ln_rates;
-    return judged * (score - link->n * log(FEWEST_SHARE)) > log(3600 / trains->call_class.false_per_hour);
+    double score = fmax(link->score[NARROW], link->score[WIDE]);
+    return judged * (score - link->ln_fewest) > log(3600 / trains->call_class.false_per_hour);
 }

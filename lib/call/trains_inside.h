@@ -45,6 +45,7 @@ struct link {
     double gain;        /* what the last pair added, at best */
     double score[2];    /* sum of ln densities, the rate of stray pulses left out, for either spread */
     double ln_rates;    /* sum of ln of the rate of pulses that look so, to compare chains by */
+    double ln_fewest;   /* likewise of a rate of strays that is surely too low */
     double alike;       /* sum of the likenesses above 0 */
     double rank;        /* the better score and `alike` less ln_rates: which chains are kept */
 };
@@ -52,8 +53,9 @@ struct link {
 struct node {
     struct pulse pulse;
     double time_s, level_db;
-    double ln_rate; /* of the rate at which pulses such as this come, by which chains are compared */
-    uint32_t owner; /* train that has claimed it; 0 none, HIDDEN */
+    double ln_rate;   /* of the rate at which pulses such as this come, by which chains are compared */
+    double ln_fewest; /* of what noise alone gives of them */
+    uint32_t owner;   /* train that has claimed it; 0 none, HIDDEN */
     uint32_t n_links;
     struct link links[LINKS];
 };
