@@ -55,10 +55,42 @@ static enum light light_at(const struct surroundings *surroundings, int64_t now_
     return day ? LIGHT_DAY : LIGHT_DARK;
 }
 
-/* To the whole minute, so that it does not matter how often the sun is looked at; at most a day ahead. */
+#define MINUTE (60 * TIME_NS_PER_S)
+#define DAY_MINUTES 1440
+#define YEAR_DAYS 366
+#define MIDDLE_MINUTES 240 /* the day's bounds may lie so far from sunrise and sunset, and more */
+#define STEP_MINUTES 10
+
+/* The first whole minute from `from_ns` to before to_ns with another light; to_ns where there is none. */
+static int64_t first_change_ns(const struct surroundings *surroundings, int64_t from_ns, int64_t to_ns)
+{
+    while (from_ns < to_ns && light_at(surroundings, from_ns) == surroundings->light)
+        from_ns += MINUTE;
+    return from_ns;
+}
+
+/* Where the sun does not rise, or set, for days: it first does about noon, or midnight, and on the next day
+ * for longer than a step; so it is enough to look there, and then at every minute of the day before.
+ * INT64_MAX: not within a year. */
+static int64_t far_change_ns(const struct surroundings *surroundings, int64_t at_ns)
+{
+    int64_t noon_ns =
+        time_from_s((12 - surroundings->longitude_deg / 15) * 3600) - surroundings->zero_unix_ns;
+    int64_t middle_ns = surroundings->light == LIGHT_DARK ? noon_ns : noon_ns - DAY_MINUTES / 2 * MINUTE;
+    middle_ns += (at_ns - middle_ns) / (DAY_MINUTES * MINUTE) * DAY_MINUTES * MINUTE;
+    middle_ns -= middle_ns % MINUTE;
+    for (int day = 0; day < YEAR_DAYS; day++, middle_ns += DAY_MINUTES * MINUTE)
+        for (int m = -MIDDLE_MINUTES; m <= MIDDLE_MINUTES; m += STEP_MINUTES) {
+            int64_t looked_ns = middle_ns + m * MINUTE, before_ns = looked_ns - DAY_MINUTES * MINUTE;
+            if (looked_ns > at_ns && light_at(surroundings, looked_ns) != surroundings->light)
+                return first_change_ns(surroundings, before_ns > at_ns ? before_ns : at_ns, looked_ns);
+        }
+    return INT64_MAX;
+}
+
+/* To the whole minute, so that it does not matter how often the sun is looked at. */
 void surroundings_update(struct surroundings *surroundings, int64_t now_ns)
 {
-    const int64_t minute = 60 * TIME_NS_PER_S;
     if (now_ns >= surroundings->light_from_ns && now_ns < surroundings->light_until_ns)
         return;
     surroundings->light_from_ns = now_ns;
@@ -66,11 +98,11 @@ void surroundings_update(struct surroundings *surroundings, int64_t now_ns)
     surroundings->light = LIGHT_UNKNOWN;
     if (!knows_sun(surroundings))
         return;
-    int64_t at = now_ns / minute * minute, end = at + 1440 * minute;
-    surroundings->light = light_at(surroundings, at);
-    for (at += minute; at < end && light_at(surroundings, at) == surroundings->light; at += minute)
-        ;
-    surroundings->light_until_ns = at;
+    int64_t at_ns = now_ns / MINUTE * MINUTE, end_ns = at_ns + DAY_MINUTES * MINUTE;
+    surroundings->light = light_at(surroundings, at_ns);
+    surroundings->light_until_ns = first_change_ns(surroundings, at_ns + MINUTE, end_ns);
+    if (surroundings->light_until_ns == end_ns)
+        surroundings->light_until_ns = far_change_ns(surroundings, end_ns);
 }
 
 static void look_anew(struct surroundings *surroundings)

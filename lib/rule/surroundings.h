@@ -39,7 +39,7 @@ void surroundings_set_place(struct surroundings *surroundings, double latitude_d
 /* Day from after_sunrise_minutes after sunrise to before_sunset_minutes before sunset, else dark; unknown
  * where time or place are. */
 enum light surroundings_light(const struct surroundings *surroundings);
-/* When the light next changes, watch time, to the minute; INT64_MAX where it does not within a day, or nobody
+/* When the light next changes, watch time, to the minute; INT64_MAX where it does not within a year, or nobody
  * knows. */
 int64_t surroundings_light_change_ns(const struct surroundings *surroundings);
 /* Dark as far as is known. */

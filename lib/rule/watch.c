@@ -139,7 +139,8 @@ static int64_t next_due_ns(const struct watch *watch)
         due = contact_due_ns(watch);
     if (conditions_due_ns(watch) < due)
         due = conditions_due_ns(watch);
-    return due;
+    int64_t light_ns = surroundings_light_change_ns(&watch->surroundings);
+    return light_ns > watch->now_ns && light_ns < due ? light_ns : due;
 }
 
 /* Each timer that is due by to_ns fires at its own time, so it does not matter how often this is called. */
@@ -172,6 +173,7 @@ static void pass_outage(struct watch *watch, const struct event *event)
     }
     effort_accrue(watch, event->known_ns);
     watch->now_ns = event->known_ns;
+    surroundings_update(&watch->surroundings, watch->now_ns); /* it may have become dark meanwhile */
     if (outage)
         effort_outage(watch, false);
 }

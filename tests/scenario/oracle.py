@@ -5,7 +5,7 @@ which animals count as inside and until when, and what observer and crew are tol
 
 HUSHWATCH_LENGTH=short 20, check 150, long 2,500 sequences a permit in one piece; HUSHWATCH_PIECE=K (from 0) takes the
 Kth piece, so that 40 pieces of HUSHWATCH_LENGTH=long are 100,000 a permit. HUSHWATCH_PERMIT names one permit alone. In
-one sequence of HUSHWATCH_EVERY_MOMENT (50) the oracle looks again at every time that any clause could name after anything
+one sequence of HUSHWATCH_EVERY_MOMENT (200) the oracle looks again at every time that any clause could name after anything
 that happened, so that no moment is missed that both sides might have forgotten."""
 import json
 import os
@@ -23,7 +23,7 @@ from permit_oracle import MIN, S
 BUILD = os.environ.get("HUSHWATCH_BUILD", "build")
 PROGRAM = os.path.join(BUILD, "tests/support/watch_facts")
 COUNT = {"short": 20, "long": 2500}.get(os.environ.get("HUSHWATCH_LENGTH"), 150)
-EVERY = int(os.environ.get("HUSHWATCH_EVERY_MOMENT", "50"))
+EVERY = int(os.environ.get("HUSHWATCH_EVERY_MOMENT", "200"))
 PIECE = int(os.environ.get("HUSHWATCH_PIECE", "0"))
 SPECIES = ["", "killer whale", "bottlenose dolphin", "minke whale", "Hector's dolphin", "New Zealand sea lion"]
 # Where the sun is looked at: summer and winter of high latitudes, where it does not set or rise, and places where it
@@ -213,8 +213,8 @@ def sequence(rng, p, suns):
                 continue
         seen["group"] = e.get("group", seen["group"])
         add(e, t)
-    s["checks"] = sorted({e["at"] for e in s["events"]} | {t + round(m * MIN) + d for m in times for d in (0, 1000)} |
-                         {at for at, _ in s["lights"][1:] if t < at < t + 300 * MIN})
+    edges = [t + round(m * MIN) for m in times] + [at for at, _ in s["lights"][1:] if t < at < t + 300 * MIN]
+    s["checks"] = sorted({at + d for at in rng.sample(edges, min(4, len(edges))) for d in (0, 1000)})
     return s
 
 

@@ -112,19 +112,23 @@ class Day:
     def anew(self):
         self.counted = []
 
+    def judge_hole(self, start, end):
+        """What was kept before a hole that is too long, whatever it is made of, counts no more."""
+        holes = self.missed + ([(self.missing, self.t)] if self.missing is not None else [])
+        holes = union(holes + (self.deaf_spans if self.row()["acoustic"] else []) + [(start, end)])
+        for a, b in holes:
+            if a <= start and b >= end and b - a >= self.hole_limit():
+                self.counted = [(max(c, b), d) for c, d in self.counted if d > b]
+
     def judge_watch(self):
         kept = self.is_kept() and not self.down
         if not kept and self.missing is None:
             self.missing = self.t
+        if self.missing is not None:
+            self.judge_hole(self.missing, self.t)
         if kept and self.missing is not None:
             self.missed.append((self.missing, self.t))
             self.missing = None
-        holes = self.missed + ([(self.missing, self.t)] if self.missing is not None else [])
-        holes = union(holes + (self.deaf_spans if self.row()["acoustic"] else []))
-        limit = self.hole_limit()
-        ends = [b for a, b in holes if b - a >= limit]
-        if ends and self.counted and self.counted[0][0] < max(ends):
-            self.counted = [(max(a, max(ends)), b) for a, b in self.counted if b > max(ends)]
         worth = self.p["break_watch"]
         self.counts = kept and (worth == "stands" if self.phase in SOUNDS else
                                 worth != "nothing" if self.phase in (BREAK, SHUTDOWN, POST) else True)
@@ -142,6 +146,8 @@ class Day:
         self.deaf_spans = spans
         if self.row()["acoustic"]:
             self.counted = without(self.counted, common(newly, spans))
+            for a, b in common(newly, spans):
+                self.judge_hole(a, b)
 
     # ---- animals and orders
     def holds_start(self, a):
