@@ -85,10 +85,12 @@ static bool is_skirt(const struct covers *covers, const struct found_call *sound
                      const struct found_call *call)
 {
     enum manner manner = manner_of(covers, sound);
+    double after = SKIRT_AFTER_S * covers->rate_hz;
     return (manner == MANNER_BURST || manner == MANNER_HOPS) && call->n_pulses == 0 &&
            call->snr_db <= sound->snr_db - SKIRT_DB && call->high_hz >= sound->low_hz / SKIRT_RATIO &&
            call->low_hz <= sound->high_hz * SKIRT_RATIO &&
-           call->end_frame <= sound->end_frame + 2 * SKIRT_AFTER_S * covers->rate_hz;
+           fmin(call->end_frame, sound->end_frame + after) - fmax(call->start_frame, sound->start_frame) >=
+               COVERED * (call->end_frame - call->start_frame);
 }
 
 /* Stands out of noise no farther than its swelling alone might. */
@@ -136,6 +138,8 @@ bool covers_doubts(const struct covers *covers, const struct found_call *call)
     for (uint32_t i = 0; i < remembered(covers->n_sounds) && !doubts; i++) {
         const struct found_call *sound = &covers->sounds[i];
         enum manner manner = manner_of(covers, sound);
+        if (is_skirt(covers, sound, call))
+            return true;
         double until = manner == MANNER_LINE ? sound->end_frame + LINE_GOES_ON_S * covers->rate_hz
                                              : goes_on_until(sound);
         bool snaps = manner == MANNER_SNAPS && is_like_snaps(covers, call);
@@ -160,14 +164,12 @@ static double covered_frames(const struct covers *covers, const struct found_cal
                  sound->high_hz >= call->low_hz && sound->low_hz <= call->high_hz;
     if (is_the_same(covers, sound, call))
         return call->end_frame - call->start_frame;
-    bool skirt = is_skirt(covers, sound, call);
-    if (!edges && !skirt && (!shares_band(covers, sound, call) || !shares_rhythm(sound, call)))
+    if (!edges && (!shares_band(covers, sound, call) || !shares_rhythm(sound, call)))
         return 0;
     /* A tone is told to within its window: one that only touches the sound is full of it. */
     double window =
         call->n_pulses == 0 ? covers->classes[call->class_index].tone.window_s * covers->rate_hz : 0;
-    double after = skirt ? fmax(window, SKIRT_AFTER_S * covers->rate_hz) : window;
-    return fmax(0, fmin(sound->end_frame + after, call->end_frame) -
+    return fmax(0, fmin(sound->end_frame + window, call->end_frame) -
                        fmax(sound->start_frame - window, call->start_frame));
 }
 

@@ -4,8 +4,9 @@
  * time and the same band, and for trains the same rhythm. A sound that was known before the call withholds
  * it; a sound that becomes known later names the call, so that the watch takes its evidence back.
  *
- * A tone close beside a machine's and far weaker is its skirt: covered too. Noise that swells covers trains
- * of its own rhythm that barely stand out of it; on what else barely does it throws doubt (covers_doubts).
+ * A tone close beside a machine's and far weaker is as likely its skirt: doubted (covers_doubts). Noise that
+ * swells covers trains of its own rhythm that barely stand out of it; on what else barely does it throws
+ * doubt (covers_doubts).
  *
  * Sounds of one class come in entries of at most one in COVERS_ENTRY_S: the first at once, those that follow
  * gathered and counted. One that speaks against a call is given at once, with its own times. */
