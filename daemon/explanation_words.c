@@ -1,5 +1,5 @@
-/* What an entry says, in words; see explain_words.h. */
-#include "verb/explain_words.h"
+/* What an entry says, in words; see explanation_words.h. */
+#include "explanation_words.h"
 #include <stddef.h>
 #include <string.h>
 
@@ -50,7 +50,7 @@ static void append_key(const char **at, bool required, struct text *sql)
     *at = end + 1;
 }
 
-void explain_words(const char *kind, struct text *sql)
+void explanation_words(const char *kind, struct text *sql)
 {
     bool optional = false;
     const char *at = "";
