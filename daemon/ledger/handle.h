@@ -14,6 +14,8 @@ struct ledger {
     sqlite3_stmt *find, *insert;
     struct ledger_tail tail; /* as last committed; of a writer */
     bool doubtful;           /* a commit failed: open again and read where the file stands */
+    int64_t deadline_ns;     /* of a reader */
+    const atomic_bool *stop;
 };
 
 /* Takes PATH.lock; STATUS_BUSY with the other's process number in the problem, STATUS_SYSTEM. */

@@ -3,6 +3,7 @@
 #include "ledger/ledger.h"
 #include "ledger/handle.h"
 #include "record/views.h"
+#include <pthread.h>
 #include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -24,6 +25,8 @@ enum status handle_status(int sqlite_result)
         return STATUS_FULL;
     case SQLITE_NOMEM:
         return STATUS_NO_MEMORY;
+    case SQLITE_INTERRUPT:
+        return STATUS_TIMEOUT;
     case SQLITE_BUSY:
     case SQLITE_LOCKED:
         return STATUS_BUSY;
@@ -267,9 +270,19 @@ static enum status lock_and_open(struct ledger *ledger, enum ledger_open_mode mo
     return status;
 }
 
+/* SQLite's sums of its memory, which nobody reads, cost a lock that all handles share: a reader of low priority
+ * that was taken off the processor in it would hold up the writer. (SQLITE_CONFIG_MEMSTATUS of its manual; before
+ * the first handle, once.) */
+static void set_up_library(void)
+{
+    sqlite3_config(SQLITE_CONFIG_MEMSTATUS, 0);
+}
+
 enum status ledger_open(const char *path, enum ledger_open_mode mode, struct ledger **out,
                         char problem[LEDGER_PROBLEM_SIZE])
 {
+    static pthread_once_t once = PTHREAD_ONCE_INIT;
+    pthread_once(&once, set_up_library);
     struct ledger *ledger = calloc(1, sizeof *ledger);
     if (ledger)
         ledger->path = strdup(path);

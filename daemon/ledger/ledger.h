@@ -9,6 +9,7 @@
 
 #include "base/status.h"
 #include "record/entry.h"
+#include <stdatomic.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -80,6 +81,17 @@ enum status ledger_select(struct ledger *ledger, const char *sql, size_t n_param
                           const char *const *parameters,
                           enum status (*take)(void *context, int n_columns, const char *const *columns),
                           void *context);
+
+/* From now on a reading that is not over at that time of the monotonic clock, or while *stop is true (NULL:
+ * nobody stops it), ends with STATUS_TIMEOUT. 0: no limit. Of a reader's handle. */
+void ledger_set_deadline(struct ledger *ledger, int64_t deadline_ns, const atomic_bool *stop);
+
+/* Rises when another handle has written; STATUS_OK or what reading said. */
+enum status ledger_get_version(struct ledger *ledger, int64_t *out);
+
+/* The seq of the first entry whose utc is that text or later, found by halves, as utc never falls; one more
+ * than the last entry's where there is none. */
+enum status ledger_find_time(struct ledger *ledger, const char *utc, int64_t *out_seq);
 
 /* Compares the schema with what the program itself defines, and lets SQLite check the file's own structure;
  * calls fault once for each difference, with a sentence. */
