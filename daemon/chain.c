@@ -337,6 +337,7 @@ static enum status start_pages(struct chain *chain, struct problems *problems)
     struct http_setup setup = {.address = site->address,
                                .port = site->port,
                                .board = chain->board,
+                               .ledger = site->ledger,
                                .n_hosts = site->n_hosts,
                                .accounts = site->accounts,
                                .certificate = site->certificate,

@@ -28,6 +28,7 @@ void http_add_headers(struct MHD_Response *response)
     static const char *const headers[][2] = {
         {"Content-Security-Policy",
          "default-src 'none'; script-src 'self'; style-src 'self'; img-src 'self' data:; connect-src 'self'; "
+         "media-src 'self'; "
          "base-uri 'none'; form-action 'none'; frame-ancestors 'none'"},
         {"X-Content-Type-Options", "nosniff"},
         {"X-Frame-Options", "DENY"},
@@ -211,7 +212,7 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     bool exists;
     const char *why;
     const struct web_file *file;
-    const struct route *route = http_find_route(method, url, &exists, &file);
+    const struct route *route = http_find_route(!http->board, method, url, &exists, &file);
     unsigned code = wrong(http, connection, method, route, exists, &why);
     if (code != 0)
         return http_refuse(connection, code, why, NULL, NULL);
@@ -229,6 +230,7 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     request->visitor = visitor;
     request->too_large = request->submitted = false;
     request->body_length = 0;
+    review_reset(&request->review);
     *request_context = request;
     return MHD_YES;
 }
@@ -265,7 +267,10 @@ void http_completed(void *context, struct MHD_Connection *connection, void **req
     struct http *http = context;
     connections_set(http->connections, socket_of(connection),
                     http_now_ns() + HTTP_IDLE_DEADLINE_S * TIME_NS_PER_S);
-    free(*request_context);
+    struct request *request = *request_context;
+    if (request)
+        review_end(&request->review);
+    free(request);
     *request_context = NULL;
 }
 

@@ -5,9 +5,11 @@
 #include "http/connections.h"
 #include "http/desk.h"
 #include "http/events.h"
+#include "http/review.h"
 #include "http/server.h"
 #include "http/visitor.h"
 #include "http/web.h"
+#include "ledger/checker.h"
 #include <microhttpd.h>
 #include <pthread.h>
 #include <stdatomic.h>
@@ -18,7 +20,7 @@ struct http {
     struct MHD_Daemon *daemon;
     int listen_fd;
     uint32_t port;
-    struct board *board;
+    struct board *board; /* NULL ashore: nothing but the review of a ledger */
     struct connections *connections;
     struct events *events;
     struct desk *desk; /* notes */
@@ -27,6 +29,10 @@ struct http {
     struct http_callbacks callbacks;
     char *certificate, *key; /* PEM texts; NULL without TLS */
     bool secure;             /* the connections are TLS */
+    struct readers *readers; /* NULL, as the two below, where there is no ledger */
+    struct checker *checker;
+    char *clips_folder;
+    char ledger_name[256]; /* the file's, for people */
     uint32_t n_hosts;
     char hosts[HTTP_MAX_HOSTS][NOTE_NAME_SIZE];
     pthread_t tender;
@@ -45,6 +51,7 @@ struct request {
     size_t body_length;
     char body[HTTP_MAX_BODY];
     struct desk_item item;
+    struct review review;
 };
 
 struct route {
@@ -56,8 +63,8 @@ struct route {
 bool http_is_open(const struct route *route, const struct web_file *file);
 
 /* The route of a path and method, or NULL; whether the path exists at all; the embedded file that it names,
- * NULL where it is an endpoint. */
-const struct route *http_find_route(const char *method, const char *path, bool *out_exists,
+ * NULL where it is an endpoint. ashore: of what a ledger alone can answer. */
+const struct route *http_find_route(bool ashore, const char *method, const char *path, bool *out_exists,
                                     const struct web_file **out_file);
 
 /* Queues an answer with the headers that every answer has; the body is copied. */

@@ -4,7 +4,9 @@
 #include <string.h>
 
 #define LINE(method, path, answer) {method, path, answer},
-static const struct route endpoints[] = {HTTP_ROUTES(LINE)};
+static const struct route endpoints[] = {HTTP_LEDGER_ROUTES(LINE) HTTP_ROUTES(LINE)};
+#define ONE(method, path, answer) +1
+#define N_LEDGER (0 HTTP_LEDGER_ROUTES(ONE)) /* the first ones */
 
 static const char *type_of(const char *name)
 {
@@ -19,17 +21,19 @@ static const char *type_of(const char *name)
     return "application/octet-stream";
 }
 
-/* "/" is index.html, "/crew" is crew.html, "/crew.js" is itself; NULL for anything else. */
-static const struct web_file *find_file(const char *path)
+/* "/" is index.html, "/crew" is crew.html, "/crew.js" is itself; NULL for anything else. Ashore there is one
+ * page. */
+static const struct web_file *find_file(bool ashore, const char *path)
 {
     if (path[0] != '/')
         return NULL;
-    const char *name = path[1] ? path + 1 : "index";
+    const char *name = path[1] ? path + 1 : ashore ? "review" : "index";
     size_t length = strlen(name);
     for (const struct web_file *file = web_files; file->name; file++)
         if (strncmp(file->name, name, length) == 0 &&
             (file->name[length] == '\0' || strcmp(file->name + length, ".html") == 0))
-            return file;
+            return ashore && strstr(file->name, ".html") && strcmp(file->name, "review.html") != 0 ? NULL
+                                                                                                   : file;
     return NULL;
 }
 
@@ -47,15 +51,15 @@ bool http_is_open(const struct route *route, const struct web_file *file)
     return route->answer == api_sign_in || route->answer == api_sign_out;
 }
 
-const struct route *http_find_route(const char *method, const char *path, bool *out_exists,
+const struct route *http_find_route(bool ashore, const char *method, const char *path, bool *out_exists,
                                     const struct web_file **out_file)
 {
     static const struct route files = {"GET", "", answer_file};
-    *out_file = find_file(path);
+    *out_file = find_file(ashore, path);
     *out_exists = *out_file != NULL;
     if (*out_file)
         return strcmp(method, "GET") == 0 ? &files : NULL;
-    for (size_t i = 0; i < sizeof endpoints / sizeof endpoints[0]; i++)
+    for (size_t i = 0; i < (ashore ? (size_t)N_LEDGER : sizeof endpoints / sizeof endpoints[0]); i++)
         if (strcmp(endpoints[i].path, path) == 0) {
             *out_exists = true;
             if (strcmp(endpoints[i].method, method) == 0)

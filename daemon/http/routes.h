@@ -1,4 +1,5 @@
-/* The endpoints: one line each. A page or another embedded file needs none (see routes.c). */
+/* The endpoints: one line each, below for what the watch answers, or further down for what its ledger does,
+ * also ashore. A page or another embedded file needs none (see routes.c). */
 #ifndef HTTP_ROUTES_H
 #define HTTP_ROUTES_H
 
@@ -14,7 +15,17 @@
     ROUTE("POST", "/api/sign-in", api_sign_in)                                                               \
     ROUTE("POST", "/api/sign-out", api_sign_out)
 
+#define HTTP_LEDGER_ROUTES(ROUTE)                                                                            \
+    ROUTE("GET", "/api/ledger", api_ledger)                                                                  \
+    ROUTE("GET", "/api/entries", api_entries)                                                                \
+    ROUTE("GET", "/api/timeline", api_timeline)                                                              \
+    ROUTE("GET", "/api/explain", api_explain)                                                                \
+    ROUTE("GET", "/api/contacts", api_contacts)                                                              \
+    ROUTE("GET", "/api/sample", api_sample)                                                                  \
+    ROUTE("GET", "/api/clip", api_clip)
+
 #define HTTP_DECLARE(method, path, answer) enum MHD_Result answer(struct request *request);
 HTTP_ROUTES(HTTP_DECLARE)
+HTTP_LEDGER_ROUTES(HTTP_DECLARE)
 
 #endif

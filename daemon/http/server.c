@@ -70,9 +70,12 @@ static void *tend(void *context)
     bool waiting = false;
     int64_t looked_ns = 0;
     while (!atomic_load(&http->stopping)) {
-        seen = board_wait(http->board, seen, waiting ? 20 * 1000000 : 100 * 1000000);
+        if (http->board)
+            seen = board_wait(http->board, seen, waiting ? 20 * 1000000 : 100 * 1000000);
+        else
+            usleep(100000);
         int64_t now_ns = http_now_ns();
-        waiting = events_wake_due(http->events, seen, now_ns);
+        waiting = http->events && events_wake_due(http->events, seen, now_ns);
         connections_cut(http->connections, now_ns);
         if (now_ns - looked_ns >= TIME_NS_PER_S) {
             visitors_refresh(http->visitors);
@@ -123,11 +126,11 @@ static enum status start_parts(struct http *http, const struct socket_address *a
     enum status status = listen_on(http, address);
     if (status == STATUS_OK)
         status = connections_create(HTTP_MAX_CONNECTIONS + 8, HTTP_MAX_WAITING, &http->connections);
-    if (status == STATUS_OK)
+    if (status == STATUS_OK && http->board)
         status = events_create(http->board, &http->events);
-    if (status == STATUS_OK)
+    if (status == STATUS_OK && http->board)
         status = desk_create(hand_over, http, &http->desk);
-    if (status == STATUS_OK)
+    if (status == STATUS_OK && http->board)
         status = desk_create(check_password, http, &http->door);
     return status == STATUS_OK ? start_library(http) : status;
 }
@@ -183,6 +186,22 @@ static void say_why_not(const struct http *http, enum status status, const char 
                      http->secure ? "; do certificate and key belong together?" : "");
 }
 
+static enum status start_review(struct http *http, const struct http_setup *setup)
+{
+    if (!setup->ledger)
+        return STATUS_OK;
+    const char *slash = strrchr(setup->ledger, '/');
+    snprintf(http->ledger_name, sizeof http->ledger_name, "%s", slash ? slash + 1 : setup->ledger);
+    int made = setup->clips ? asprintf(&http->clips_folder, "%s", setup->clips)
+                            : asprintf(&http->clips_folder, "%s.sound/clips", setup->ledger);
+    if (made < 0) {
+        http->clips_folder = NULL;
+        return STATUS_NO_MEMORY;
+    }
+    enum status status = readers_create(setup->ledger, &http->readers);
+    return status == STATUS_OK ? checker_create(setup->ledger, &http->checker) : status;
+}
+
 enum status http_start(const struct http_setup *setup, const struct http_callbacks *callbacks,
                        struct problems *problems, struct http **out)
 {
@@ -206,6 +225,8 @@ enum status http_start(const struct http_setup *setup, const struct http_callbac
     enum status status = take_credentials(http, setup, loopback, where, problems);
     errno = 0;
     if (status == STATUS_OK)
+        status = start_review(http, setup);
+    if (status == STATUS_OK)
         status = start_parts(http, &address);
     if (status != STATUS_OK) {
         say_why_not(http, status, where, problems);
@@ -227,13 +248,15 @@ void http_stop(struct http *http)
         return;
     atomic_store(&http->stopping, true);
     if (http->has_tender) {
-        board_wake(http->board);
+        if (http->board)
+            board_wake(http->board);
         pthread_join(http->tender, NULL);
     }
     if (http->daemon)
         MHD_quiesce_daemon(http->daemon);
     desk_stop(http->desk);
     desk_stop(http->door);
+    readers_stop(http->readers);
     if (http->events)
         events_stop(http->events);
     if (http->daemon)
@@ -247,6 +270,9 @@ void http_stop(struct http *http)
     if (http->key)
         sodium_memzero(http->key, strlen(http->key));
     free(http->key);
+    readers_destroy(http->readers);
+    checker_destroy(http->checker);
+    free(http->clips_folder);
     events_destroy(http->events);
     connections_destroy(http->connections);
     free(http);

@@ -1,9 +1,10 @@
 /* The pages' server: HTTP on a loopback address, or with accounts and a certificate on any, fed by the board.
  * The only user of libmicrohttpd.
  *
- * Four threads of its own: the library's, which answers every request from memory; the tender, which wakes
- * event streams, cuts slow senders and follows the file of accounts; and two desks, one that hands notes to
- * the watch and may wait for it, one that checks passwords. */
+ * Threads of its own: the library's, which answers every request from memory; the tender, which wakes event
+ * streams, cuts slow senders and follows the file of accounts; two desks, one that hands notes to the watch
+ * and may wait for it, one that checks passwords; and for the review the readers and the checker of the
+ * ledger, which may wait for the disk. */
 #ifndef HTTP_SERVER_H
 #define HTTP_SERVER_H
 
@@ -28,7 +29,9 @@
 struct http_setup {
     const char *address; /* "127.0.0.1", "::1", "localhost"; any other needs accounts and a certificate */
     uint32_t port;       /* 0: any free one, see http_port */
-    struct board *board; /* borrowed until http_stop */
+    struct board *board; /* borrowed until http_stop; NULL: nothing but the review of a ledger */
+    const char *ledger;  /* its path, for the review; NULL: none */
+    const char *clips;   /* the folder of the sounds kept; NULL: LEDGER.sound/clips */
     uint32_t n_hosts; /* further names that a Host header may carry (of a proxy that asks for credentials) */
     const char *hosts[HTTP_MAX_HOSTS];
     /* Files; NULL or "": none. Accounts of access/accounts.h; certificate (with its chain) and key in PEM. */

@@ -7,6 +7,7 @@ const struct verb verbs[] = {
     {"verify", "check that a ledger is as it was written", verb_verify},
     {"rerun", "derive a ledger's conclusions again and compare them", verb_rerun},
     {"explain", "say which entries, clauses and values are behind an entry", verb_explain},
+    {"review", "serve the review page of a ledger", verb_review},
     {"render", "render a scene to a WAV file and its truth to JSON", verb_render},
     {"report", "write one printable page about a watch, from its ledger alone", verb_report},
     {"user", "list, add and remove who may use the pages from other machines", verb_user},

@@ -24,6 +24,7 @@ int verb_explain(int argc, char **argv);
 int verb_fieldcheck(int argc, char **argv);
 int verb_verify(int argc, char **argv);
 int verb_report(int argc, char **argv);
+int verb_review(int argc, char **argv);
 int verb_rerun(int argc, char **argv);
 int verb_render(int argc, char **argv);
 int verb_scan(int argc, char **argv);
