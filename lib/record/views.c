@@ -1,10 +1,11 @@
-/* The schema's text. `group` is quoted because it is a word of SQL; `run` is the number before an id's first
- * point, which is what CAST takes of it. */
+/* The schema's text. `group` and `check` are quoted because they are words of SQL; `run` is the number before
+ * an id's first point, which is what CAST takes of it. */
 #include "record/views.h"
 #include <string.h>
 
 #define COLUMN(name) ", json_extract(body, '$." name "') AS " name
 #define COLUMN_GROUP ", json_extract(body, '$.group') AS \"group\""
+#define COLUMN_CHECK ", json_extract(body, '$.check') AS \"check\""
 #define VIEW(kind, columns)                                                                                  \
     {                                                                                                        \
         "view", kind,                                                                                        \
@@ -103,7 +104,7 @@ const struct schema_object views_schema[] = {
         COLUMN("minutes") COLUMN("energy_kj") COLUMN("elements") COLUMN("reason")
         COLUMN("job_kind") COLUMN("leg") COLUMN("hammer") COLUMN("sequence") COLUMN("blows")
         COLUMN("first_point") COLUMN("last_point") COLUMN("charge_kg") COLUMN("donor_kg") COLUMN("refusal") COLUMN("planned_s") COLUMN("finding")
-        COLUMN("restrike") COLUMN("account") COLUMN("rank") COLUMN("check") COLUMN("cable_m")
+        COLUMN("restrike") COLUMN("account") COLUMN("rank") COLUMN_CHECK COLUMN("cable_m")
         COLUMN("hydrophone_depth_m") COLUMN("offset_m")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
