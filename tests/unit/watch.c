@@ -286,16 +286,19 @@ static void each_station_answers_for_itself(void **state)
     NOTE(2 * SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Di"}, {"station", "hammer cab"}, {"advice", id},
          {"answer", "passed"});
     NOTE(3 * SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Cy"}, {"station", "bridge"}, {"advice", id},
-         {"answer", "passed"});
+         {"answer", "stopped"});
+    NOTE(4 * SECOND, NOTE_ACKNOWLEDGEMENT, {"person", "Bo"}, {"station", "bridge"}, {"advice", id},
+         {"answer", "passed"}); /* by the observer's voice: beside the station's own answer */
     watch_get_view(watch, &view);
     const struct watch_advice *advice = &view.advice[crew];
     assert_true(advice->acknowledged);
-    assert_string_equal(advice->acknowledged_by, "Cy");
-    assert_int_equal(advice->n_acknowledgements, 2);
+    assert_string_equal(advice->acknowledged_by, "Bo");
+    assert_int_equal(advice->n_acknowledgements, 3);
     assert_string_equal(advice->acknowledgements[0].station, "bridge");
-    assert_string_equal(advice->acknowledgements[0].answer, "passed");
+    assert_string_equal(advice->acknowledgements[0].answer, "stopped");
     assert_int_equal(advice->acknowledgements[0].known_ns, 3 * SECOND);
     assert_string_equal(advice->acknowledgements[1].person, "Di");
+    assert_string_equal(advice->acknowledgements[2].answer, "passed");
 }
 
 /* An advice in force is kept while 100 others for the other station come and go. */
