@@ -54,6 +54,7 @@ struct contact {
     /* One episode lasts from when it first holds something back until it no longer does. */
     bool holding;
     bool asked;                /* put to the observer */
+    bool delaying;             /* it holds a start back */
     int64_t countdown_ends_ns; /* of the observer; meaningful while asked and not passed */
     bool passed;               /* it has gone to the crew */
     bool confirmed;            /* by a verdict, in this episode */

@@ -28,7 +28,7 @@ static void need(struct wanted *wanted, const char *what)
 static void need_start(const struct watch *watch, struct wanted *wanted)
 {
     char text[FLOW_TEXT_SIZE];
-    int64_t clear_ns = contact_all_clear_ns(watch), ready_ns = effort_ready_ns(watch);
+    int64_t clear_ns = contact_all_clear_ns(watch, true), ready_ns = effort_ready_ns(watch);
     const struct contact *holder = contact_holder(watch, true);
     if (holder) {
         snprintf(text, sizeof text, "no detection of contact %u inside until its clearance time is over",
@@ -69,7 +69,7 @@ static void ground_contact(const struct watch *watch, struct wanted *wanted, con
     const struct permit_zone *zone = contact_zone(contact, watch->permit, watch->now_ns);
     wanted->key.ground = GROUND_CONTACT;
     wanted->key.contact = contact->number;
-    wanted->key.confirmed = contact->confirmed || (contact->vouched && contact->sure);
+    wanted->key.confirmed = contact_is_vouched(contact);
     contact_describe(contact, watch->permit, watch->now_ns, text);
     bool or_hold =
         wanted->key.word == ADVICE_HOLD_POWER && watch->permit->soft_start.stop_if_possible_else_hold;
@@ -147,7 +147,7 @@ static void want_while_sounding(const struct watch *watch, const struct contact 
     } else if (lead) {
         wanted->key.word = word_of(contact_wanted(watch, lead));
         ground_contact(watch, wanted, lead);
-        wanted->until_ns = contact_all_clear_ns(watch);
+        wanted->until_ns = contact_all_clear_ns(watch, false);
         char text[FLOW_TEXT_SIZE];
         snprintf(text, sizeof text, "no detection of contact %u inside until its clearance time is over",
                  lead->number);

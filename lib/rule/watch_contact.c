@@ -65,19 +65,29 @@ static void add_evidence(const struct watch *watch, struct contact *contact, dou
     contact->evidence_ns = watch->now_ns;
 }
 
-/* What it held back, if anything, it no longer does. */
-static void let_go(struct watch *watch, struct contact *contact, const char *reason)
+static void remember_end(struct watch *watch, const struct contact *contact, const struct permit_zone *zone,
+                         const char *reason)
 {
-    const struct permit_zone *zone = contact_zone(contact, watch->permit, watch->now_ns);
-    bool held = contact->holding || watch->source.unallowed_contact == contact->number;
-    contact_end_episode(contact);
-    watch_say_contact(watch, contact);
-    if (!held)
-        return;
     why_reset(&watch->let_go, zone ? zone->clause : "", "%.250s", reason);
     why_add_cause(&watch->let_go, watch->recent.causes[0]);
     why_add_contact(&watch->let_go, contact);
     watch->let_go_ns = watch->now_ns;
+}
+
+/* What it held back, if anything, it no longer does. */
+static void let_go_of(struct watch *watch, struct contact *contact, const struct permit_zone *zone,
+                      const char *reason)
+{
+    bool held = contact->holding || watch->source.unallowed_contact == contact->number;
+    contact_end_episode(contact);
+    watch_say_contact(watch, contact);
+    if (held)
+        remember_end(watch, contact, zone, reason);
+}
+
+static void let_go(struct watch *watch, struct contact *contact, const char *reason)
+{
+    let_go_of(watch, contact, contact_zone(contact, watch->permit, watch->now_ns), reason);
 }
 
 /* What was taken for an animal was a recognised sound of something else. A contact that a person has seen or
@@ -319,16 +329,40 @@ void contact_take_verdict(struct watch *watch, const struct note *note)
         leave(watch, contact, note);
 }
 
+static void describe_clear(const struct watch *watch, const struct contact *contact, char out[FLOW_TEXT_SIZE])
+{
+    snprintf(out, FLOW_TEXT_SIZE, "contact %u, %s: no detection inside for %g min", contact->number,
+             group_text(contact->group), time_to_s(contact_clearance_ns(contact, watch->permit)) / 60);
+}
+
+/* The zones that hold a start back are clear of it, by time or by a distance; others are not yet. */
+static void expire_delay(struct watch *watch, struct contact *contact)
+{
+    char text[FLOW_TEXT_SIZE];
+    bool delays = contact->holding && contact_holds_start(contact, watch->permit, watch->now_ns);
+    bool by_time = false;
+    if (contact->holding && contact->delaying && !delays) {
+        for (uint32_t i = 0; i < watch->permit->n_zones; i++)
+            by_time = by_time || contact_zone_clear_ns(contact, watch->permit, i) == watch->now_ns;
+        if (by_time)
+            describe_clear(watch, contact, text);
+        else
+            contact_describe(contact, watch->permit, watch->now_ns, text);
+        remember_end(watch, contact, contact_zone(contact, watch->permit, watch->now_ns), text);
+    }
+    contact->delaying = delays;
+}
+
 static void expire_one(struct watch *watch, struct contact *contact)
 {
     bool holds = contact_clears_at_ns(contact, watch->permit, watch->now_ns) >= 0;
     if (contact->holding && !holds) {
         char text[FLOW_TEXT_SIZE];
-        snprintf(text, sizeof text, "contact %u, %s: no detection inside for %g min", contact->number,
-                 group_text(contact->group), time_to_s(contact_clearance_ns(contact, watch->permit)) / 60);
+        const struct permit_zone *zone = contact_last_zone(watch, contact);
+        describe_clear(watch, contact, text);
         contact->state = CONTACT_CLEARED;
         source_keep_stop(watch, contact);
-        let_go(watch, contact, text);
+        let_go_of(watch, contact, zone, text);
     } else if (holds && !contact->holding) {
         contact->holding = true; /* what people said of an earlier episode does not speak for this one */
         contact->vouched = contact->vouched && contact->word_ns == watch->now_ns;
@@ -344,8 +378,10 @@ static void expire_one(struct watch *watch, struct contact *contact)
 void contact_expire(struct watch *watch)
 {
     for (uint32_t i = 0; i < watch->contacts.n; i++)
-        if (watch->contacts.all[i].state == CONTACT_OPEN)
+        if (watch->contacts.all[i].state == CONTACT_OPEN) {
             expire_one(watch, &watch->contacts.all[i]);
+            expire_delay(watch, &watch->contacts.all[i]);
+        }
 }
 
 enum permit_action contact_wanted(const struct watch *watch, const struct contact *contact)
@@ -372,8 +408,7 @@ void contact_present(struct watch *watch)
             contact->asked = true;
             contact->countdown_ends_ns = watch->now_ns + time_from_s(watch->permit->confirm_countdown_s);
         }
-        if (contact->confirmed || (contact->vouched && contact->sure) ||
-            watch->now_ns >= contact->countdown_ends_ns)
+        if (contact_is_vouched(contact) || watch->now_ns >= contact->countdown_ends_ns)
             contact->passed = true;
         if (contact->passed && source_sounds(watch->phase) && wanted > contact->order)
             contact->order = wanted;

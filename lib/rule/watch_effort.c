@@ -324,11 +324,14 @@ void effort_unheard(struct watch *watch, const struct event *event)
         take_back(watch, &newly);
 }
 
+/* The newest that was long; short ones after it do not end it sooner. */
 static const struct span *last_deaf(const struct watch *watch)
 {
     const struct spans *deaf = &watch->effort.deaf;
-    const struct span *last = deaf->n ? &deaf->all[deaf->n - 1] : NULL;
-    return last && last->end_ns - last->start_ns >= LONG_UNHEARD_NS ? last : NULL;
+    for (uint32_t i = deaf->n; i > 0; i--)
+        if (deaf->all[i - 1].end_ns - deaf->all[i - 1].start_ns >= LONG_UNHEARD_NS)
+            return &deaf->all[i - 1];
+    return NULL;
 }
 
 bool effort_deaf(const struct watch *watch)

@@ -34,6 +34,11 @@ bool contact_phase_asks(const struct watch *watch)
     return false;
 }
 
+bool contact_is_vouched(const struct contact *contact)
+{
+    return contact->confirmed || (contact->vouched && contact->sure);
+}
+
 const struct contact *contact_lead(const struct watch *watch, bool crew)
 {
     const struct contact *lead = NULL;
@@ -42,7 +47,9 @@ const struct contact *contact_lead(const struct watch *watch, bool crew)
         if (!contact->asked || !(contact->passed || !crew)) /* most are over: look no closer */
             continue;
         enum permit_action wanted = contact_wanted(watch, contact);
-        if (wanted >= ACTION_PREPARE && (!lead || wanted > contact_wanted(watch, lead)))
+        enum permit_action most = lead ? contact_wanted(watch, lead) : ACTION_LOG;
+        bool surer = lead && wanted == most && contact_is_vouched(contact) && !contact_is_vouched(lead);
+        if (wanted >= ACTION_PREPARE && (wanted > most || surer))
             lead = contact;
     }
     return lead;
@@ -59,16 +66,43 @@ const struct contact *contact_holder(const struct watch *watch, bool questions)
     return NULL;
 }
 
-int64_t contact_all_clear_ns(const struct watch *watch)
+static enum permit_action strongest(const struct permit_zone *zone)
+{
+    enum permit_action most = ACTION_LOG;
+    for (unsigned i = 0; i < PHASE_COUNT; i++)
+        most = zone->action[i] > most ? zone->action[i] : most;
+    return most;
+}
+
+const struct permit_zone *contact_last_zone(const struct watch *watch, const struct contact *contact)
+{
+    const struct permit *permit = watch->permit;
+    const struct permit_zone *last = NULL;
+    int64_t last_ns = -1;
+    for (uint32_t i = 0; i < permit->n_zones; i++) {
+        int64_t clear_ns = contact_zone_clear_ns(contact, permit, i);
+        if (clear_ns < 0 || clear_ns < last_ns ||
+            (clear_ns == last_ns && strongest(&permit->zones[i]) <= strongest(last)))
+            continue;
+        last = &permit->zones[i];
+        last_ns = clear_ns;
+    }
+    return last;
+}
+
+int64_t contact_all_clear_ns(const struct watch *watch, bool of_starts)
 {
     int64_t latest = -1;
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[i];
-        if (!contact->holding)
+        if (!contact->holding || (of_starts && !contact_holds_start(contact, watch->permit, watch->now_ns)))
             continue;
-        int64_t clears = contact_clears_at_ns(contact, watch->permit, watch->now_ns);
-        if (clears > latest)
-            latest = clears;
+        for (uint32_t zone = 0; zone < watch->permit->n_zones; zone++) {
+            int64_t clears = contact_zone_clear_ns(contact, watch->permit, zone);
+            bool counts = !of_starts || strongest(&watch->permit->zones[zone]) >= ACTION_DELAY;
+            if (counts && clears > watch->now_ns && clears > latest)
+                latest = clears;
+        }
     }
     return latest;
 }

@@ -399,12 +399,17 @@ int64_t contact_due_ns(const struct watch *watch);
 enum permit_action contact_wanted(const struct watch *watch, const struct contact *contact);
 /* Whether the permit could ask for something of an animal that is heard or seen in this phase. */
 bool contact_phase_asks(const struct watch *watch);
-/* The contact that asks for most: of those that went to the crew, or of all that were put to the observer. */
+/* Whether an observer on watch has confirmed it, or put it inside. */
+bool contact_is_vouched(const struct contact *contact);
+/* The contact that asks for most: of those that went to the crew, or of all that were put to the observer; of
+ * several a confirmed one. */
 const struct contact *contact_lead(const struct watch *watch, bool crew);
 /* The first that holds the start back; `questions` says whether open questions count. NULL for none. */
 const struct contact *contact_holder(const struct watch *watch, bool questions);
-/* When the last of those that hold the start back is clear; -1 for none. */
-int64_t contact_all_clear_ns(const struct watch *watch);
+/* When the last of them is clear of all zones, or of those that hold a start back; -1 for none. */
+int64_t contact_all_clear_ns(const struct watch *watch, bool of_starts);
+/* The zone of the contact's newest detection inside; of several the one that asks for most. NULL: none. */
+const struct permit_zone *contact_last_zone(const struct watch *watch, const struct contact *contact);
 
 /* watch_phase.c */
 enum trigger {

@@ -278,9 +278,12 @@ static int64_t break_due_ns(const struct watch *watch)
     return row_ns > watch->now_ns && row_ns < due ? row_ns : due;
 }
 
+/* The pauses between the bursts of a soft start are no silence. */
 static int64_t silence_ns(const struct watch *watch)
 {
-    return watch->source.impulse_ns + time_from_s(watch->setup.silence_s);
+    const struct permit_soft_start *rule = &watch->permit->soft_start;
+    double pause_s = watch->phase == PHASE_SOFT_START && rule->bursts > 0 ? rule->pause_s : 0;
+    return watch->source.impulse_ns + time_from_s(watch->setup.silence_s + pause_s);
 }
 
 static int64_t too_long_ns(const struct watch *watch)
