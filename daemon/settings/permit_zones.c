@@ -86,6 +86,18 @@ void permit_read_zones(struct permit_reader *reader, struct group_reader *root)
     }
 }
 
+/* deeper = { deeper_than_m; minutes }. */
+static void read_deeper(struct permit_reader *reader, struct group_reader *parent,
+                        struct permit_clearance *clearance)
+{
+    struct group_reader group;
+    if (!group_child(parent, "deeper", READER_OPTIONAL, &group))
+        return;
+    value_number(reader, &group, "deeper_than_m", READER_REQUIRED, 1, 12000, &clearance->deeper_than_m);
+    value_number(reader, &group, "minutes", READER_REQUIRED, 0.01, 1440, &clearance->deeper_minutes);
+    group_done(&group);
+}
+
 void permit_read_clearances(struct permit_reader *reader, struct group_reader *root)
 {
     struct permit *permit = reader->permit;
@@ -99,6 +111,7 @@ void permit_read_clearances(struct permit_reader *reader, struct group_reader *r
         value_groups(reader, &group, "groups", READER_REQUIRED, &clearance->groups);
         read_species(reader, &group, &clearance->n_species, clearance->species, &clearance->species_unknown);
         value_number(reader, &group, "minutes", READER_REQUIRED, 0.01, 1440, &clearance->minutes);
+        read_deeper(reader, &group, clearance);
         value_flag(reader, &group, "leaving_ends", READER_REQUIRED, &clearance->leaving_ends);
         group_string(&group, "clause", READER_REQUIRED, clearance->clause, sizeof clearance->clause);
         group_done(&group);

@@ -50,6 +50,7 @@ struct contact *contacts_add(struct contacts *contacts, enum group group, int64_
                                 .first_ns = now_ns,
                                 .last_ns = now_ns,
                                 .evidence_ns = now_ns,
+                                .depth_m = NAN,
                                 .where_ns = -1,
                                 .word_ns = -1,
                                 .bearing_deg = NAN,
@@ -237,7 +238,7 @@ static const struct permit_clearance *clearance_of(const struct contact *contact
 int64_t contact_clearance_ns(const struct contact *contact, const struct permit *permit)
 {
     const struct permit_clearance *clearance = clearance_of(contact, permit);
-    return clearance ? time_from_s(clearance->minutes * 60) : 0;
+    return clearance ? time_from_minutes(permit_clearance_minutes(clearance, contact->depth_m)) : 0;
 }
 
 bool contact_leaving_ends(const struct contact *contact, const struct permit *permit)

@@ -31,6 +31,7 @@ struct contact {
     double animals;               /* the most that a person counted; 0: nobody has */
     char species[NOTE_NAME_SIZE]; /* as a person said last; empty: nobody has */
     int64_t first_ns, last_ns;    /* of its calls and sightings */
+    double depth_m;               /* of the water now, where its clearance time depends on it; NAN: unknown */
 
     double evidence; /* log-odds at evidence_ns; they fade from there */
     int64_t evidence_ns;

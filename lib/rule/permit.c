@@ -74,6 +74,15 @@ double permit_zone_reach_m(const struct permit_zone *zone)
     return zone->radius_m + zone->edge_m;
 }
 
+double permit_clearance_minutes(const struct permit_clearance *clearance, double depth_m)
+{
+    if (!(clearance->deeper_minutes > 0))
+        return clearance->minutes;
+    if (isnan(depth_m))
+        return fmax(clearance->minutes, clearance->deeper_minutes);
+    return depth_m > clearance->deeper_than_m ? clearance->deeper_minutes : clearance->minutes;
+}
+
 const struct permit_pre_watch *permit_pre_watch_at(const struct permit *permit, double depth_m)
 {
     const struct permit_pre_watch *found = &permit->pre_watches[0];

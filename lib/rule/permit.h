@@ -83,6 +83,7 @@ struct permit_clearance {
     char species[PERMIT_MAX_SPECIES][NOTE_NAME_SIZE];
     enum species_policy species_unknown;
     double minutes;    /* since the last detection inside a zone */
+    double deeper_than_m, deeper_minutes; /* in place of them where the water is deeper; 0: not stated */
     bool leaving_ends; /* seen leaving ends it at once */
     char clause[PERMIT_TEXT_SIZE];
 };
@@ -296,6 +297,8 @@ bool permit_get_unwatched(const struct permit *permit, uint32_t n, char out[PERM
 void permit_set_edge(struct permit *permit, double half_length_m);
 /* How far from the source's middle the zone reaches. */
 double permit_zone_reach_m(const struct permit_zone *zone);
+/* The clearance time at that depth; NAN: unknown, the longest. */
+double permit_clearance_minutes(const struct permit_clearance *clearance, double depth_m);
 /* The pre-watch at that depth; NAN: unknown, the longest. */
 const struct permit_pre_watch *permit_pre_watch_at(const struct permit *permit, double depth_m);
 /* Silence of up to this length is a break, after which no pre-watch is needed, by day or in the dark. */

@@ -87,6 +87,9 @@ static void check_clearances(struct permit_search *search, const struct permit *
         const struct permit_clearance *clearance = &permit->clearances[i];
         permit_look_at(search, "clearances[%u].minutes", i);
         permit_need_minutes(search, "a clearance time", clearance->minutes);
+        permit_look_at(search, "clearances[%u].deeper", i);
+        if (clearance->deeper_minutes > 0)
+            permit_need_minutes(search, "a clearance time in deeper water", clearance->deeper_minutes);
         permit_look_at(search, "clearances[%u]", i);
         if (!*clearance->clause)
             permit_problem(search, "the clause of a clearance time is not stated");

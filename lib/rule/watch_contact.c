@@ -33,6 +33,8 @@ static struct contact *find_or_add(struct watch *watch, enum group group, int64_
         return contact;
     contact = contacts_add(&watch->contacts, group, watch->now_ns);
     *out_new = contact != NULL;
+    if (contact)
+        contact->depth_m = watch->surroundings.depth_m;
     return contact ? contact : no_room(watch, group);
 }
 
@@ -377,11 +379,14 @@ static void expire_one(struct watch *watch, struct contact *contact)
 
 void contact_expire(struct watch *watch)
 {
-    for (uint32_t i = 0; i < watch->contacts.n; i++)
-        if (watch->contacts.all[i].state == CONTACT_OPEN) {
-            expire_one(watch, &watch->contacts.all[i]);
-            expire_delay(watch, &watch->contacts.all[i]);
-        }
+    for (uint32_t i = 0; i < watch->contacts.n; i++) {
+        struct contact *contact = &watch->contacts.all[i];
+        contact->depth_m = watch->surroundings.depth_m;
+        if (contact->state != CONTACT_OPEN)
+            continue;
+        expire_one(watch, contact);
+        expire_delay(watch, contact);
+    }
 }
 
 enum permit_action contact_wanted(const struct watch *watch, const struct contact *contact)

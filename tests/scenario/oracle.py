@@ -42,6 +42,7 @@ def durations(p):
     out += [p[k] for k in ("hole_minutes", "deterrent_least", "deterrent_gap", "turn_longest", "small_longest",
                            "outage_diagnose", "outage_extra", "post_minutes")]
     out += [p["good_minutes"], p["good_within_hours"] * 60]
+    out += [m["deeper_minutes"] for m in p["clearances"]]
     return sorted({d for d in out if 0 < d < 1e5}) + [0.5, 5]
 
 

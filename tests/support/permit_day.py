@@ -85,10 +85,7 @@ class Day:
         return self.credit() >= self.needed() and self.is_kept()
 
     def deaf(self):
-        if not self.row()["acoustic"] or not self.deaf_spans:
-            return False
-        a, b = self.deaf_spans[-1]
-        return b - a >= 10 * S and self.t < b + 11 * S
+        return bool(self.row()["acoustic"]) and any(b - a >= 10 * S and self.t < b + 11 * S for a, b in self.deaf_spans)
 
     def hole_limit(self):
         own = self.p["hole_minutes"]
@@ -219,6 +216,10 @@ class Day:
         e = self.o.newest(self.upto, "deterrent", "answer")
         return DETERRENT if e and e["answer"] == "on" else PRE_WATCH
 
+    def silence_needed(self):
+        """The pauses between the bursts of a soft start are no silence."""
+        return SILENCE + (round(self.p["burst_pause_s"] * 1e9) if self.phase == SOFT else 0)
+
     def silence_is_over(self):
         if self.silence == SHUTDOWN:
             return not self.holder(True) and not self.order_in_force()
@@ -301,7 +302,7 @@ class Day:
                 self.forget(a.number)
         self.o.pass_time(self.animals, self.t)
         self.o.begin_episodes(self.animals, self.t)
-        if self.heard and self.t >= self.impulse_at + SILENCE:
+        if self.heard and self.t >= self.impulse_at + self.silence_needed():
             self.heard, self.unsaid = False, 0
             if self.heard_in and self.sound is not None and self.sound not in STEADY:
                 self.quiet = self.impulse_at
@@ -368,7 +369,7 @@ class Day:
             other = max(self.limit(self.unallowed), self.limit(self.asks()))
             if max(lead, other) > LOG:
                 return (WORDS.get(max(lead, other), DO_NOT_START),
-                        True if other > lead else spoken.pop() if len(spoken) == 1 else None)
+                        True if other > lead else any(spoken))  # of several one that somebody has spoken for
             may_ask = any(z["action"][self.phase] >= PREPARE for z in self.p["zones"])
             return (PREPARE_TO_STOP if may_ask and blind else CARRY_ON), True
         if self.phase == BREAK:
@@ -407,10 +408,9 @@ class Day:
             out.append(start + self.hole_limit())
         if self.counts and self.credit() < self.needed():
             out.append(self.t + self.needed() - self.credit())
-        if self.deaf_spans:
-            out.append(self.deaf_spans[-1][1] + 11 * S)
+        out += [b + 11 * S for a, b in self.deaf_spans[-20:]]
         if self.heard:
-            out.append(self.impulse_at + SILENCE)
+            out.append(self.impulse_at + self.silence_needed())
         if p["deterrent"]:
             for e in o.events[:self.upto]:
                 if e["kind"] == "deterrent":
@@ -468,6 +468,7 @@ class Day:
             self.down = False
             self.judge_watch()
         self.upto += 1
+        self.o.upto = self.upto
         old_on = self.on
         self.on = self.o.people(self.upto)
         self.kept = self.o.kept(self.upto, self.on)

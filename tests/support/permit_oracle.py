@@ -63,6 +63,7 @@ class Oracle:
         self.lights = [at for at, _ in day["lights"]]
         self.light_names = [name for _, name in day["lights"]]
         self.rows, self.cache = permit["clearances"], {}
+        self.upto = 0  # events that have come
 
     def light(self, t):
         return self.light_names[bisect.bisect_right(self.lights, t) - 1]
@@ -188,7 +189,12 @@ class Oracle:
 
     def clearance(self, a):
         rows = [r for r in self.rows if a.group in r["groups"] and self.listed(r, a)]
-        return (minutes(rows[-1]["minutes"]), rows[-1]["leaving_ends"]) if rows else (0, False)
+        if not rows:
+            return 0, False
+        row, depth = rows[-1], self.depth(self.upto)
+        long = row["deeper_minutes"] if row["deeper_minutes"] > 0 else row["minutes"]
+        needed = max(long, row["minutes"]) if depth is None else long if depth > row["deeper"] else row["minutes"]
+        return minutes(needed), row["leaving_ends"]
 
     def covers(self, z, a):
         return (a.group in z["groups"] and ((z["seen"] and a.seen) or (z["heard"] and a.calls)) and

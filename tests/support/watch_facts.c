@@ -82,6 +82,8 @@ static void print_rows(const struct permit *permit)
         groups(row->groups);
         species(row->n_species, row->species, row->species_unknown);
         number("minutes", row->minutes);
+        number("deeper", row->deeper_than_m);
+        number("deeper_minutes", row->deeper_minutes);
         printf("\"leaving_ends\": %d}", row->leaving_ends);
     }
     printf("], \"breaks\": [");
@@ -104,6 +106,7 @@ static int print_permit(const struct permit *permit)
     printf("{\"id\": \"%s\", \"explosives\": %d, ", permit->id, permit->activity == ACTIVITY_EXPLOSIVES);
     print_rows(permit);
     number("hole_minutes", permit->pre_watch_hole_minutes);
+    number("burst_pause_s", permit->soft_start.bursts > 0 ? permit->soft_start.pause_s : 0);
     printf("\"break_watch\": \"%s\", ", permit_break_watch_text(permit->break_watch));
     printf("\"deterrent\": %d, ", permit->deterrent.stated);
     number("deterrent_least", permit->deterrent.least_minutes);

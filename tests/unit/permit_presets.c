@@ -129,7 +129,8 @@ static void ireland(const char *id, enum permit_activity activity, enum zone_ori
     states("pre_watch.deeper[0].deeper_than_m", "200", MARK_SECONDARY);
     states("pre_watch.deeper[0].minutes", "60", MARK_SECONDARY);
     assert_false(permit.pre_watches[0].acoustic);
-    states("clearances[0].minutes", "30", MARK_FILLED); /* 30 or 60, by the depth: the site says which */
+    states("clearances[0].minutes", "30", MARK_SECONDARY);
+    states("clearances[0].deeper.minutes", "60", MARK_SECONDARY);
     /* Once the ramp-up has begun no halt (thecre.com, quoting pages 26 and 27); starts by day (memory) */
     assert_int_equal(permit.zones[0].action[PHASE_READY], ACTION_DELAY);
     assert_int_equal(permit.zones[0].action[PHASE_SOFT_START], ACTION_LOG);
