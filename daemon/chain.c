@@ -8,6 +8,7 @@
 #include "ledger/ledger.h"
 #include "restore.h"
 #include "rules.h"
+#include "sound/keeping.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -35,8 +36,9 @@ struct chain {
     struct watcher *watcher;
     struct board *board;
     struct http *http;
-    struct position_feed *feed; /* NULL where the settings name none */
-    struct timed_note *notes;   /* of all timetables, in watch time */
+    struct sound_keeping *sound; /* NULL where none is kept */
+    struct position_feed *feed;  /* NULL where the settings name none */
+    struct timed_note *notes;    /* of all timetables, in watch time */
     unsigned n_notes;
 };
 
@@ -65,6 +67,14 @@ static void take_column(void *context, uint32_t stream, const struct column *col
         board_push_column(chain->board, stream, column);
 }
 
+static void take_sound(void *context, uint32_t stream, int64_t start_ns, const float *samples,
+                       uint32_t n_frames)
+{
+    const struct chain *chain = context;
+    if (chain->sound)
+        keeping_push(chain->sound, stream, start_ns, samples, n_frames);
+}
+
 static enum status open_streams(struct chain *chain, struct problems *problems)
 {
     struct site *site = chain->setup.site;
@@ -76,6 +86,8 @@ static enum status open_streams(struct chain *chain, struct problems *problems)
                                      .goes_on = !chain->setup.scan && site->streams[i].real_pace};
         if (!chain->setup.scan)
             setup.columns = (struct stream_columns){take_column, chain};
+        if (!chain->setup.scan)
+            setup.sound = (struct stream_sound){take_sound, chain};
         enum status status = stream_open(&setup, problems, &chain->streams[i]);
         chain->n_streams = i + 1;
         if (status != STATUS_OK && first == STATUS_OK)
@@ -199,6 +211,26 @@ static enum status create_board(struct chain *chain)
     return board_create(&setup, &chain->board);
 }
 
+/* A scan's sound is kept already; sound at a pace of its own would outrun any disk. */
+static enum status create_keeping(struct chain *chain)
+{
+    struct keeping_setup setup = {.site = chain->setup.site,
+                                  .ledger = chain->ledger,
+                                  .run = chain->run,
+                                  .zero_unix_ns = chain->zero_unix_ns,
+                                  .start_ns = chain->mark.outage_end_ns,
+                                  .n_streams = chain->n_streams};
+    if (chain->setup.scan)
+        return STATUS_OK;
+    for (uint32_t i = 0; i < chain->n_streams; i++) {
+        const struct input_facts *facts = stream_get_facts(chain->streams[i]);
+        bool paced = facts->live || chain->setup.site->streams[i].real_pace;
+        setup.streams[i] =
+            (struct disk_ring_stream){.rate_hz = facts->rate_hz, .n_channels = paced ? facts->n_channels : 0};
+    }
+    return keeping_create(&setup, &chain->sound);
+}
+
 static enum status create_threads(struct chain *chain)
 {
     bool live[SITE_MAX_STREAMS];
@@ -207,6 +239,8 @@ static enum status create_threads(struct chain *chain)
     enum status status = merge_create(chain->n_streams, live, chain->mark.outage_end_ns, &chain->merge);
     if (status == STATUS_OK && !chain->setup.scan)
         status = create_board(chain);
+    if (status == STATUS_OK)
+        status = create_keeping(chain);
     return status;
 }
 
@@ -285,6 +319,7 @@ static enum status create_watcher(struct chain *chain)
                                   .outbox = chain->outbox,
                                   .board = chain->board,
                                   .feed = chain->feed,
+                                  .sound = chain->sound,
                                   .run = chain->run,
                                   .zero_unix_ns = chain->zero_unix_ns,
                                   .n_streams = chain->n_streams,
@@ -293,6 +328,8 @@ static enum status create_watcher(struct chain *chain)
                                   .notes = chain->notes,
                                   .n_notes = chain->n_notes};
     enum status status = watcher_create(&setup, &chain->watcher);
+    if (status == STATUS_OK && !chain->setup.scan && chain->restored.last_run > 0)
+        watcher_recall(chain->watcher, chain->setup.site->ledger);
     if (status == STATUS_OK)
         watcher_show(chain->watcher, chain->restored.last_ns);
     return status;
@@ -338,12 +375,17 @@ static enum status start_pages(struct chain *chain, struct problems *problems)
                                .port = site->port,
                                .board = chain->board,
                                .ledger = site->ledger,
+                               .ring = keeping_ring(chain->sound),
+                               .store = keeping_clips(chain->sound),
                                .n_hosts = site->n_hosts,
                                .accounts = site->accounts,
                                .certificate = site->certificate,
                                .key = site->key};
     for (uint32_t i = 0; i < site->n_hosts; i++)
         setup.hosts[i] = site->hosts[i];
+    for (uint32_t i = 0; i < chain->n_streams; i++)
+        setup.listening[i] = keeping_listening_channel(&chain->setup.site->streams[i],
+                                                       stream_get_facts(chain->streams[i])->n_channels);
     const struct http_callbacks callbacks = {take_note, chain};
     return http_start(&setup, &callbacks, problems, &chain->http);
 }
@@ -398,6 +440,7 @@ enum status chain_stop(struct chain *chain, uint64_t *out_lost)
         merge_stop(chain->merge);
     for (uint32_t i = 0; i < chain->n_streams; i++)
         stream_stop(chain->streams[i]);
+    keeping_finish(chain->sound);
     watcher_stop(chain->watcher);
     enum status status = STATUS_OK;
     if (chain->outbox)
@@ -420,6 +463,7 @@ void chain_destroy(struct chain *chain)
     position_feed_destroy(chain->feed);
     for (uint32_t i = 0; i < chain->n_streams; i++)
         stream_destroy(chain->streams[i]);
+    keeping_destroy(chain->sound);
     merge_destroy(chain->merge);
     recorder_destroy(chain->recorder);
     board_destroy(chain->board);

@@ -315,6 +315,11 @@ void hearing_take(struct hearing_view *hearing, const struct outcome *outcome)
         take_call(hearing, outcome, event);
     else if (event->kind == EVENT_IMPULSE)
         take_impulse(hearing, outcome, event);
+    else if (event->kind == EVENT_NOTE) {
+        char id[FLOW_ID_SIZE];
+        flow_id(outcome->run, outcome->stream, "note", outcome->counter, id);
+        hearing_take_mark(hearing, id, &event->as.note);
+    }
 }
 
 void hearing_add_unrecorded(struct hearing_view *hearing, const char *id)

@@ -12,6 +12,14 @@ void hearing_take(struct hearing_view *hearing, const struct outcome *outcome);
 /* Empties the steps that begin up to a watch time. */
 void hearing_advance_sound(struct hearing_sound *sound, int64_t watch_ns);
 
+/* Marks, and what completes or takes back one; a note that has to do with none changes nothing. */
+void hearing_take_mark(struct hearing_view *hearing, const char *id, const struct note *note);
+/* A clip whose entry is written. */
+void hearing_add_clip(struct hearing_view *hearing, const char *id, const struct sound_entry_facts *facts);
+
+/* Marks and clips of a ledger, in order; nothing where it cannot be read. */
+void hearing_recall(struct hearing_view *hearing, const char *ledger_path);
+
 /* Remembers an advice that waits to be committed, and forgets it once it has been. */
 void hearing_add_unrecorded(struct hearing_view *hearing, const char *id);
 void hearing_set_recorded(struct hearing_view *hearing, const char *id);

@@ -117,6 +117,13 @@ enum status recorder_calibration(struct recorder *recorder, int64_t watch_ns, ui
         watch_ns, "calibration");
 }
 
+enum status recorder_sound(struct recorder *recorder, int64_t watch_ns, const struct sound_entry_facts *facts,
+                           char out_id[FLOW_ID_SIZE])
+{
+    flow_id(recorder->run, facts->stream, "sound", facts->counter, out_id);
+    return put_body(recorder, entry_body_sound(recorder->run, facts, &recorder->body), watch_ns, "sound");
+}
+
 enum status recorder_finish(struct recorder *recorder, int64_t watch_ns)
 {
     const struct minute_sink sink = {take_minute, recorder};

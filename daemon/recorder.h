@@ -38,6 +38,10 @@ enum status recorder_clock(struct recorder *recorder, int64_t watch_ns, uint32_t
 enum status recorder_calibration(struct recorder *recorder, int64_t watch_ns, uint32_t stream,
                                  const struct calibration *calibration, const struct channel_facts *facts);
 
+/* A clip that is on the disk; the facts carry their counter. *out_id is its entry's. */
+enum status recorder_sound(struct recorder *recorder, int64_t watch_ns, const struct sound_entry_facts *facts,
+                           char out_id[FLOW_ID_SIZE]);
+
 /* What is still held (a minute's levels) goes out; at the end of a run. */
 enum status recorder_finish(struct recorder *recorder, int64_t watch_ns);
 

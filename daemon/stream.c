@@ -189,6 +189,15 @@ static void note_state(struct stream *stream, const struct input_piece *piece)
     }
 }
 
+static void give_sound(const struct stream *stream, const struct input_piece *piece)
+{
+    const struct stream_sound *sound = &stream->setup.sound;
+    if (sound->take && piece->n_frames > 0)
+        sound->take(sound->context, stream->setup.number,
+                    time_of_frame(&stream->map, stream->next_frame + piece->lost_before), stream->samples,
+                    piece->n_frames);
+}
+
 static enum status take_piece(struct stream *stream, uint32_t max_frames)
 {
     const struct block_sink sink = {take_block, stream};
@@ -203,6 +212,7 @@ static enum status take_piece(struct stream *stream, uint32_t max_frames)
     if (stream->facts.live)
         follow_clock(stream, piece.n_frames + (uint32_t)piece.lost_before);
     keep_pace(stream, piece.n_frames + (uint32_t)piece.lost_before);
+    give_sound(stream, &piece);
     blocks_push(stream->blocks, piece.lost_before, stream->samples, piece.n_frames, &sink);
     stream->next_frame += piece.lost_before + piece.n_frames;
     note_state(stream, &piece);

@@ -19,11 +19,19 @@ struct stream_columns {
     void *context;
 };
 
+/* Where its sound goes as it comes, from its thread: n frames, the first of them at a watch time. Must not
+ * wait. */
+struct stream_sound {
+    void (*take)(void *context, uint32_t stream, int64_t start_ns, const float *samples, uint32_t n_frames);
+    void *context;
+};
+
 struct stream_setup {
     uint32_t number;                        /* from 1 */
     const struct stream_settings *settings; /* borrowed */
     const struct catalogue *catalogue;      /* borrowed */
     struct stream_columns columns;          /* take may be NULL */
+    struct stream_sound sound;              /* take may be NULL */
     bool goes_on; /* when the input ends, time goes on as a gap, by the monotonic clock */
 };
 

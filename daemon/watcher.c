@@ -24,7 +24,7 @@ struct watcher {
     unsigned next_note;
     uint64_t note_counter, position_counter;
     uint32_t map_changes[SITE_MAX_STREAMS];
-    bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind, said_silent;
+    bool said_ended[SITE_MAX_STREAMS], said_not_recording, was_left_behind, said_silent, said_not_kept;
     bool changed; /* something that people should see at once */
     int64_t published_ns, beat_ns;
     pthread_t thread;
@@ -105,6 +105,8 @@ static void take_outcome(void *context, const struct outcome *outcome)
         outcome->as.event.kind == EVENT_NOTE)
         watcher->changed = true;
     keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
+    if (watcher->setup.sound)
+        keeping_take(watcher->setup.sound, outcome);
     if (watcher->setup.tally)
         keep_status(watcher, tally_take(watcher->setup.tally, outcome, &sums));
 }
@@ -217,6 +219,27 @@ static void look_at_feed(struct watcher *watcher, int64_t watch_ns)
     }
 }
 
+/* Clips that reached the disk become entries; a ring or a clip that the disk does not take is a fault. */
+static void look_at_sound(struct watcher *watcher, int64_t watch_ns)
+{
+    struct sound_entry_facts facts;
+    char id[FLOW_ID_SIZE], problem[BOARD_LINE_SIZE];
+    if (!watcher->setup.sound)
+        return;
+    while (keeping_take_done(watcher->setup.sound, &facts)) {
+        keep_status(watcher, recorder_sound(watcher->setup.recorder, watch_ns, &facts, id));
+        keeping_add(watcher->setup.sound, id, &facts);
+        hearing_add_clip(watcher->hearing, id, &facts);
+    }
+    keeping_get_problem(watcher->setup.sound, problem, sizeof problem);
+    if (*problem)
+        hearing_add_fault(watcher->hearing, "SOUND IS NOT KEPT: %s", problem);
+    if ((*problem != '\0') != watcher->said_not_kept) {
+        watcher->said_not_kept = *problem != '\0';
+        say_health(watcher, watch_ns, 0, !*problem, *problem ? problem : "sound is kept again");
+    }
+}
+
 /* Channels whose impulse levels are refused, all that the run has: it holds until the settings change. */
 static void look_at_room(struct watcher *watcher, uint32_t i)
 {
@@ -286,6 +309,7 @@ static void publish(struct watcher *watcher, int64_t watch_ns)
         look_at_stream(watcher, i, watch_ns);
     look_at_outbox(watcher, watch_ns);
     look_at_feed(watcher, watch_ns);
+    look_at_sound(watcher, watch_ns);
     uint32_t left_behind = merge_get_left_behind(watcher->setup.merge);
     if ((left_behind != 0) != watcher->was_left_behind) {
         watcher->was_left_behind = left_behind != 0;
@@ -382,6 +406,11 @@ static void name_streams(struct watcher *watcher)
         shown->n_channels = facts->n_channels;
         shown->block_age_s = NAN;
     }
+}
+
+void watcher_recall(struct watcher *watcher, const char *ledger_path)
+{
+    hearing_recall(watcher->hearing, ledger_path);
 }
 
 void watcher_show(struct watcher *watcher, int64_t watch_ns)

@@ -12,6 +12,7 @@
 #include "rule/tally.h"
 #include "rule/watch.h"
 #include "settings/notes.h"
+#include "sound/keeping.h"
 #include "stream.h"
 #include <stdbool.h>
 #include <stdint.h>
@@ -25,8 +26,9 @@ struct watcher_setup {
     struct tally *tally; /* NULL: nothing is summed */
     struct recorder *recorder;
     struct outbox *outbox;
-    struct board *board;        /* NULL: nobody looks */
-    struct position_feed *feed; /* NULL: none */
+    struct board *board;         /* NULL: nobody looks */
+    struct position_feed *feed;  /* NULL: none */
+    struct sound_keeping *sound; /* NULL: no sound is kept */
     uint32_t run;
     int64_t zero_unix_ns; /* UTC of watch time zero */
     uint32_t n_streams;
@@ -37,6 +39,8 @@ struct watcher_setup {
 };
 
 enum status watcher_create(const struct watcher_setup *setup, struct watcher **out);
+/* Before it starts: marks and clips that a ledger holds, for the pages. */
+void watcher_recall(struct watcher *watcher, const char *ledger_path);
 /* Publishes what the watch knows now, before anything starts: a page that asks at once sees what is in force.
  */
 void watcher_show(struct watcher *watcher, int64_t watch_ns);

@@ -67,6 +67,7 @@ static void render(struct leaf *leaf, uint32_t run, const struct watch_view *wat
     board_json_watch(text, watch);
     board_json_hearing(text, hearing);
     board_json_sounds(text, hearing, watch->watch_ns);
+    board_json_marks(text, hearing);
     text_append(text, "}");
     size_t end = text->length;
     text_append(text, "\n\n");

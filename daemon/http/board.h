@@ -10,6 +10,7 @@
 #include "flow.h"
 #include "http/columns.h"
 #include "listen/listen.h"
+#include "record/marks.h"
 #include "rule/permit.h"
 #include "rule/watch.h"
 #include "settings/site.h"
@@ -27,6 +28,8 @@
 #define BOARD_CURVE_STEP_S 10
 #define BOARD_MAX_HEARD 7200 /* impulses of which the curve can be made again: an hour of 120 a minute */
 #define BOARD_MAX_UNRECORDED 8
+#define BOARD_MAX_MARKS 24
+#define BOARD_MAX_CLIPS 32
 #define BOARD_MAX_SOUNDS 32    /* classes that are no animal's */
 #define BOARD_SOUND_STEP_S 600 /* an hour is the step at hand and the five before it */
 #define BOARD_SOUND_STEPS 144  /* a day */
@@ -110,6 +113,22 @@ struct hearing_sound {
     uint64_t n, n_against;              /* of this run: sounds; calls that they took back */
 };
 
+/* A moment that somebody marked, and what became of it. */
+struct hearing_mark {
+    char id[FLOW_ID_SIZE];
+    int64_t occurred_ns;
+    char person[NOTE_NAME_SIZE];
+    bool withdrawn;                 /* by a correction */
+    char completed[NOTE_NAME_SIZE]; /* id of the note that says what it was; "" while the mark is open */
+    char text[BOARD_LINE_SIZE];     /* of the mark, then of what completed it */
+};
+
+/* A stretch of sound that is kept; its entry's id is what GET /clip/ID takes. */
+struct hearing_clip {
+    char id[FLOW_ID_SIZE];
+    struct sound_entry_facts facts;
+};
+
 /* What the daemon knows beside the watch. Lists are newest first. About 500 kB: not for the stack. */
 struct hearing_view {
     int64_t unix_at_zero_ns; /* UTC of watch time 0 by the clock map in force */
@@ -123,6 +142,10 @@ struct hearing_view {
     struct hearing_impulse impulses[BOARD_MAX_IMPULSES];
     uint32_t n_sounds;
     struct hearing_sound sounds[BOARD_MAX_SOUNDS];
+    uint32_t n_marks;
+    struct hearing_mark marks[BOARD_MAX_MARKS];
+    uint32_t n_clips;
+    struct hearing_clip clips[BOARD_MAX_CLIPS];
     uint32_t n_unheard;
     struct hearing_unheard unheard[BOARD_MAX_UNHEARD];
     uint32_t n_curve; /* the loudest of our impulses in each step of the last hour, oldest first */

@@ -25,6 +25,9 @@ void board_json_hearing(struct text *text, const struct hearing_view *hearing);
 /* "sounds": what else was heard, counted up to a watch time. */
 void board_json_sounds(struct text *text, const struct hearing_view *hearing, int64_t watch_ns);
 
+/* "marks", "clips". */
+void board_json_marks(struct text *text, const struct hearing_view *hearing);
+
 /* "curve", "exposures", "sources": what the source's sound adds up to. */
 void board_json_sums(struct text *text, const struct hearing_view *hearing);
 

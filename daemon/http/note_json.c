@@ -9,7 +9,7 @@
     "sign-on, sign-off, sighting, distance, verdict, release, acknowledgement, source state, job, weather, " \
     "quieting, deterrent, safety override, plan, answer to a finding, other source, whose, position, "       \
     "check, hand-over, mark, "                                                                               \
-    "remark"
+    "correction, remark"
 
 __attribute__((format(printf, 4, 5))) static enum status
 refuse(struct note_refusal *refusal, const char *field, const char *allowed, const char *format, ...)
@@ -57,6 +57,16 @@ static enum status set_one(struct note *note, const char *field, const json_t *v
     }
 }
 
+static enum status read_line(struct note *note, const json_t *value, struct note_refusal *refusal)
+{
+    char sentence[MARK_LINE_SENTENCE_SIZE] = "";
+    if (!json_is_string(value))
+        return refuse(refusal, "line", "a text", "the value has no fitting form");
+    if (mark_line_read(json_string_value(value), note, sentence) != STATUS_OK)
+        return refuse(refusal, "line", "", "%s", sentence);
+    return STATUS_OK;
+}
+
 static enum status from_object(json_t *object, struct note *out, struct note_refusal *refusal)
 {
     const char *kind_word = json_string_value(json_object_get(object, "kind"));
@@ -71,7 +81,8 @@ static enum status from_object(json_t *object, struct note *out, struct note_ref
     {
         if (strcmp(field, "kind") == 0)
             continue;
-        enum status status = set_one(&note, field, value, refusal);
+        enum status status = strcmp(field, "line") == 0 ? read_line(&note, value, refusal)
+                                                        : set_one(&note, field, value, refusal);
         if (status != STATUS_OK)
             return status;
     }

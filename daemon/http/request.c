@@ -212,7 +212,8 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     bool exists;
     const char *why;
     const struct web_file *file;
-    const struct route *route = http_find_route(!http->board, method, url, &exists, &file);
+    const char *rest;
+    const struct route *route = http_find_route(!http->board, method, url, &exists, &file, &rest);
     unsigned code = wrong(http, connection, method, route, exists, &why);
     if (code != 0)
         return http_refuse(connection, code, why, NULL, NULL);
@@ -231,6 +232,8 @@ static enum MHD_Result begin(struct http *http, struct MHD_Connection *connectio
     request->too_large = request->submitted = false;
     request->body_length = 0;
     review_reset(&request->review);
+    request->sound.data = NULL;
+    snprintf(request->rest, sizeof request->rest, "%s", strlen(rest) < sizeof request->rest ? rest : "");
     *request_context = request;
     return MHD_YES;
 }
@@ -268,8 +271,10 @@ void http_completed(void *context, struct MHD_Connection *connection, void **req
     connections_set(http->connections, socket_of(connection),
                     http_now_ns() + HTTP_IDLE_DEADLINE_S * TIME_NS_PER_S);
     struct request *request = *request_context;
-    if (request)
+    if (request) {
         review_end(&request->review);
+        free(request->sound.data);
+    }
     free(request);
     *request_context = NULL;
 }

@@ -5,6 +5,7 @@
 #include "http/connections.h"
 #include "http/desk.h"
 #include "http/events.h"
+#include "http/player.h"
 #include "http/review.h"
 #include "http/server.h"
 #include "http/visitor.h"
@@ -21,6 +22,9 @@ struct http {
     int listen_fd;
     uint32_t port;
     struct board *board; /* NULL ashore: nothing but the review of a ledger */
+    struct disk_ring *ring;
+    struct clip_store *clips;     /* of the watch, or of the ledger ashore */
+    struct clip_store *own_clips; /* ashore: to be destroyed here */
     struct connections *connections;
     struct events *events;
     struct desk *desk; /* notes */
@@ -33,6 +37,8 @@ struct http {
     struct checker *checker;
     char *clips_folder;
     char ledger_name[256]; /* the file's, for people */
+    struct player *player;
+    uint32_t listening[SITE_MAX_STREAMS]; /* see http_setup */
     uint32_t n_hosts;
     char hosts[HTTP_MAX_HOSTS][NOTE_NAME_SIZE];
     pthread_t tender;
@@ -50,8 +56,10 @@ struct request {
     bool submitted; /* the item is with a desk, or was */
     size_t body_length;
     char body[HTTP_MAX_BODY];
+    char rest[FLOW_ID_SIZE]; /* of the path, where its route is a beginning; "" where it is too long */
     struct desk_item item;
     struct review review;
+    struct player_item sound;
 };
 
 struct route {
@@ -63,9 +71,10 @@ struct route {
 bool http_is_open(const struct route *route, const struct web_file *file);
 
 /* The route of a path and method, or NULL; whether the path exists at all; the embedded file that it names,
- * NULL where it is an endpoint. ashore: of what a ledger alone can answer. */
+ * NULL where it is an endpoint; what of the path follows the route's, within path. ashore: of what a ledger
+ * alone can answer. */
 const struct route *http_find_route(bool ashore, const char *method, const char *path, bool *out_exists,
-                                    const struct web_file **out_file);
+                                    const struct web_file **out_file, const char **out_rest);
 
 /* Queues an answer with the headers that every answer has; the body is copied. */
 enum MHD_Result http_answer(struct MHD_Connection *connection, unsigned code, const char *type,

@@ -51,16 +51,27 @@ bool http_is_open(const struct route *route, const struct web_file *file)
     return route->answer == api_sign_in || route->answer == api_sign_out;
 }
 
+/* A path that ends in a slash stands for all that begin with it and have no further slash. */
+static bool fits(const char *endpoint, const char *path, const char **out_rest)
+{
+    size_t length = strlen(endpoint);
+    *out_rest = path + length;
+    if (endpoint[length - 1] != '/')
+        return strcmp(endpoint, path) == 0;
+    return strncmp(endpoint, path, length) == 0 && path[length] != '\0' && !strchr(path + length, '/');
+}
+
 const struct route *http_find_route(bool ashore, const char *method, const char *path, bool *out_exists,
-                                    const struct web_file **out_file)
+                                    const struct web_file **out_file, const char **out_rest)
 {
     static const struct route files = {"GET", "", answer_file};
     *out_file = find_file(ashore, path);
+    *out_rest = "";
     *out_exists = *out_file != NULL;
     if (*out_file)
         return strcmp(method, "GET") == 0 ? &files : NULL;
     for (size_t i = 0; i < (ashore ? (size_t)N_LEDGER : sizeof endpoints / sizeof endpoints[0]); i++)
-        if (strcmp(endpoints[i].path, path) == 0) {
+        if (fits(endpoints[i].path, path, out_rest)) {
             *out_exists = true;
             if (strcmp(endpoints[i].method, method) == 0)
                 return &endpoints[i];

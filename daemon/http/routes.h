@@ -1,5 +1,6 @@
 /* The endpoints: one line each, below for what the watch answers, or further down for what its ledger does,
- * also ashore. A page or another embedded file needs none (see routes.c). */
+ * also ashore. What follows a path that ends in a slash is the request's `rest`. A page or another embedded
+ * file needs none (see routes.c). */
 #ifndef HTTP_ROUTES_H
 #define HTTP_ROUTES_H
 
@@ -10,6 +11,7 @@
     ROUTE("GET", "/api/permit", api_permit)                                                                  \
     ROUTE("GET", "/api/events", api_events)                                                                  \
     ROUTE("GET", "/api/sound", api_sound)                                                                    \
+    ROUTE("GET", "/api/hear", api_hear)                                                                      \
     ROUTE("POST", "/api/note", api_note)                                                                     \
     ROUTE("GET", "/api/who", api_who)                                                                        \
     ROUTE("POST", "/api/sign-in", api_sign_in)                                                               \
@@ -22,6 +24,7 @@
     ROUTE("GET", "/api/explain", api_explain)                                                                \
     ROUTE("GET", "/api/contacts", api_contacts)                                                              \
     ROUTE("GET", "/api/sample", api_sample)                                                                  \
+    ROUTE("GET", "/clip/", api_hear_clip)                                                                    \
     ROUTE("GET", "/api/clip", api_clip)
 
 #define HTTP_DECLARE(method, path, answer) enum MHD_Result answer(struct request *request);

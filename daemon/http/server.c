@@ -132,6 +132,8 @@ static enum status start_parts(struct http *http, const struct socket_address *a
         status = desk_create(hand_over, http, &http->desk);
     if (status == STATUS_OK && http->board)
         status = desk_create(check_password, http, &http->door);
+    if (status == STATUS_OK)
+        status = player_create(http->ring, http->clips, &http->player);
     return status == STATUS_OK ? start_library(http) : status;
 }
 
@@ -186,6 +188,20 @@ static void say_why_not(const struct http *http, enum status status, const char 
                      http->secure ? "; do certificate and key belong together?" : "");
 }
 
+/* Ashore nobody else knows which clips there are. */
+static enum status find_clips(struct http *http, const char *path)
+{
+    struct ledger *ledger;
+    char problem[LEDGER_PROBLEM_SIZE];
+    enum status status = clip_store_create(http->clips_folder, &http->own_clips);
+    http->clips = http->own_clips;
+    if (status != STATUS_OK || ledger_open(path, LEDGER_READ, &ledger, problem) != STATUS_OK)
+        return status;
+    clip_store_load(http->own_clips, ledger); /* an older ledger has none */
+    ledger_close(ledger);
+    return STATUS_OK;
+}
+
 static enum status start_review(struct http *http, const struct http_setup *setup)
 {
     if (!setup->ledger)
@@ -199,6 +215,8 @@ static enum status start_review(struct http *http, const struct http_setup *setu
         return STATUS_NO_MEMORY;
     }
     enum status status = readers_create(setup->ledger, &http->readers);
+    if (status == STATUS_OK && !http->board)
+        status = find_clips(http, setup->ledger);
     return status == STATUS_OK ? checker_create(setup->ledger, &http->checker) : status;
 }
 
@@ -219,6 +237,9 @@ enum status http_start(const struct http_setup *setup, const struct http_callbac
         return STATUS_NO_MEMORY;
     http->listen_fd = -1;
     http->board = setup->board;
+    http->ring = setup->ring;
+    http->clips = setup->store;
+    memcpy(http->listening, setup->listening, sizeof http->listening);
     for (uint32_t i = 0; i < setup->n_hosts && i < HTTP_MAX_HOSTS; i++, http->n_hosts++)
         snprintf(http->hosts[i], sizeof http->hosts[i], "%s", setup->hosts[i]);
     http->callbacks = *callbacks;
@@ -257,6 +278,7 @@ void http_stop(struct http *http)
     desk_stop(http->desk);
     desk_stop(http->door);
     readers_stop(http->readers);
+    player_stop(http->player);
     if (http->events)
         events_stop(http->events);
     if (http->daemon)
@@ -273,6 +295,8 @@ void http_stop(struct http *http)
     readers_destroy(http->readers);
     checker_destroy(http->checker);
     free(http->clips_folder);
+    player_destroy(http->player);
+    clip_store_destroy(http->own_clips);
     events_destroy(http->events);
     connections_destroy(http->connections);
     free(http);

@@ -13,6 +13,8 @@
 #include "http/board.h"
 #include "rule/note.h"
 #include "settings/reader.h"
+#include "sound/clip_store.h"
+#include "sound/disk_ring.h"
 #include <stdint.h>
 
 #define HTTP_MAX_HOSTS 8
@@ -27,11 +29,14 @@
 #define HTTP_BEAT_GAP_NS INT64_C(1000000000)
 
 struct http_setup {
-    const char *address; /* "127.0.0.1", "::1", "localhost"; any other needs accounts and a certificate */
-    uint32_t port;       /* 0: any free one, see http_port */
-    struct board *board; /* borrowed until http_stop; NULL: nothing but the review of a ledger */
-    const char *ledger;  /* its path, for the review; NULL: none */
-    const char *clips;   /* the folder of the sounds kept; NULL: LEDGER.sound/clips */
+    const char *address;    /* "127.0.0.1", "::1", "localhost"; any other needs accounts and a certificate */
+    uint32_t port;          /* 0: any free one, see http_port */
+    struct board *board;    /* borrowed until http_stop; NULL: nothing but the review of a ledger */
+    const char *ledger;     /* its path, for the review; NULL: none */
+    const char *clips;      /* the folder of the sounds kept; NULL: LEDGER.sound/clips */
+    struct disk_ring *ring; /* sound that can be heard; NULL: none. Borrowed likewise */
+    struct clip_store *store;             /* clips that can be heard; NULL: none. Borrowed likewise */
+    uint32_t listening[SITE_MAX_STREAMS]; /* the channel of each stream that is heard when none is named */
     uint32_t n_hosts; /* further names that a Host header may carry (of a proxy that asks for credentials) */
     const char *hosts[HTTP_MAX_HOSTS];
     /* Files; NULL or "": none. Accounts of access/accounts.h; certificate (with its chain) and key in PEM. */

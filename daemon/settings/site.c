@@ -263,6 +263,20 @@ static void read_evidence(struct group_reader *root, struct site *site)
     group_done(&contact);
 }
 
+static void read_sound(struct group_reader *root, struct site *site)
+{
+    struct group_reader group;
+    struct sound_settings *sound = &site->sound;
+    *sound = (struct sound_settings){.minutes = 30, .most_mib = 16384, .leave_mib = 256, .around_s = 5};
+    group_child(root, "sound", READER_OPTIONAL, &group);
+    read_path(&group, site->folder, "folder", READER_OPTIONAL, sound->folder);
+    group_number(&group, "minutes", READER_OPTIONAL, 0, 1440, &sound->minutes);
+    group_number(&group, "most_mib", READER_OPTIONAL, 1, 1e7, &sound->most_mib);
+    group_number(&group, "leave_mib", READER_OPTIONAL, 0, 1e6, &sound->leave_mib);
+    group_number(&group, "around_s", READER_OPTIONAL, 0, 20, &sound->around_s);
+    group_done(&group);
+}
+
 /* Streams without a place of their own. */
 static unsigned count_free(const struct site *site)
 {
@@ -294,6 +308,7 @@ static void read_site(struct reader *reader, struct site *out)
     group_number(&root, "silence_s", READER_OPTIONAL, 1, 3600, &out->silence_s);
     read_pages(&root, out);
     read_evidence(&root, out);
+    read_sound(&root, out);
     source_settings_read(&root, out->folder, &out->source);
     read_streams(&root, out);
     position_settings_read(&root, &out->source.place, count_free(out), &out->position);

@@ -49,6 +49,14 @@ struct stream_settings {
     struct channel_settings channels[FLOW_MAX_CHANNELS];
 };
 
+/* What is kept of the sound itself. */
+struct sound_settings {
+    char folder[SITE_PATH_SIZE]; /* of ring and clips; empty: LEDGER.sound */
+    double minutes;              /* of the ring; 0: no sound is kept */
+    double most_mib, leave_mib;  /* the ring's size at most; so much of the disk stays free */
+    double around_s;             /* of sound before and after a call in its clip */
+};
+
 struct site {
     char name[64];
     char folder[SITE_PATH_SIZE]; /* of the settings file; relative paths start there */
@@ -63,6 +71,7 @@ struct site {
     uint32_t port;
     uint32_t n_stations;
     char stations[SITE_MAX_STATIONS][NOTE_NAME_SIZE]; /* crew stations that acknowledge for themselves */
+    struct sound_settings sound;
     struct source_settings source;
     struct position_settings position;
     uint32_t n_streams;

@@ -114,15 +114,14 @@ static void put_fixed(struct body *body, const struct event *event, const char *
         body_id(body, event->run, event->stream, "note", event->counter);
     else if (strcmp(name, "note") == 0)
         body_text(body, name, note_kind_text(note->kind));
-    else if (strcmp(name, "planned_s") == 0 && note->planned_ns > 0)
-        body_time(body, name, note->planned_ns);
-    else if (strcmp(name, "planned_s") != 0)
+    else
         body_time(body, name, strcmp(name, "known_s") == 0 ? note->known_ns : note->occurred_ns);
 }
 
 static void put_field(struct body *body, const struct note *note, const struct note_field *field)
 {
     const void *member = (const char *)note + field->offset;
+    char key[NOTE_NAME_SIZE];
     switch (field->form) {
     case NOTE_FORM_TEXT:
     case NOTE_FORM_WORD:
@@ -143,14 +142,17 @@ static void put_field(struct body *body, const struct note *note, const struct n
         if (*(const bool *)member)
             body_bool(body, field->name, true);
         break;
-    case NOTE_FORM_TIME: /* occurred_s, planned_s */
+    case NOTE_FORM_TIME: /* but occurred_s, which every note has */
+        note_time_key(field, key);
+        if (strcmp(key, "occurred_s") != 0 && *(const int64_t *)member > 0)
+            body_time(body, key, *(const int64_t *)member);
         break;
     }
 }
 
 static enum status note_body(const struct event *event, struct text *out)
 {
-    static const char *const fixed[] = {"id", "known_s", "note", "occurred_s", "planned_s"};
+    static const char *const fixed[] = {"id", "known_s", "note", "occurred_s"};
     const size_t n_fixed = sizeof fixed / sizeof fixed[0];
     struct body body;
     size_t next = 0;

@@ -1,4 +1,4 @@
-/* Bodies of run, permit, health, calibration, clock and stamp entries. */
+/* Bodies of run, permit, health, calibration, clock, sound and stamp entries. */
 #include "record/marks.h"
 #include "base/round.h"
 #include "record/body.h"
@@ -206,6 +206,32 @@ enum status entry_body_clock(uint32_t run, uint32_t stream, uint64_t counter, co
     put_text(&body, "source", facts->source);
     body_integer(&body, "stream", stream);
     body_text(&body, "watch_zero_utc", zero);
+    return body_end(&body);
+}
+
+const char *sound_reason_text(enum sound_reason reason)
+{
+    return reason == SOUND_ADVICE ? "advice" : reason == SOUND_MARK ? "mark" : "dismissed";
+}
+
+enum status entry_body_sound(uint32_t run, const struct sound_entry_facts *facts, struct text *out)
+{
+    struct body body;
+    body_begin(&body, out);
+    body_integer(&body, "bytes", (int64_t)facts->bytes);
+    body_causes(&body, facts->n_causes, facts->causes);
+    body_integer(&body, "channel", facts->channel);
+    body_time(&body, "end_s", facts->end_ns);
+    body_text(&body, "file", facts->file);
+    body_number(&body, "high_hz", facts->high_hz, ROUND_DECIMALS_HZ);
+    body_id(&body, run, facts->stream, "sound", facts->counter);
+    body_number(&body, "low_hz", facts->low_hz, ROUND_DECIMALS_HZ);
+    body_number(&body, "missing_s", facts->missing_s, ROUND_DECIMALS_S);
+    body_number(&body, "rate_hz", facts->rate_hz, ROUND_DECIMALS_HZ);
+    body_text(&body, "reason", sound_reason_text(facts->reason));
+    body_text(&body, "sha256", facts->sha256);
+    body_time(&body, "start_s", facts->start_ns);
+    body_integer(&body, "stream", facts->stream);
     return body_end(&body);
 }
 

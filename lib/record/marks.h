@@ -1,6 +1,6 @@
 /* Bodies of the entries that the daemon and the scan write themselves, not the watch: run, permit, health,
- * calibration, clock, stamp. The counter of an id runs per run, stream and kind, from 1, as everywhere.
- * Every function: STATUS_NO_MEMORY leaves out unusable. Texts are borrowed for the call. */
+ * calibration, clock, sound, stamp. The counter of an id runs per run, stream and kind, from 1, as
+ * everywhere. Every function: STATUS_NO_MEMORY leaves out unusable. Texts are borrowed for the call. */
 #ifndef RECORD_MARKS_H
 #define RECORD_MARKS_H
 
@@ -88,6 +88,26 @@ struct clock_facts {
 };
 enum status entry_body_clock(uint32_t run, uint32_t stream, uint64_t counter, const struct clock_facts *facts,
                              struct text *out);
+
+/* A clip: a stretch of sound that is kept, as a FLAC file of one channel, and why. */
+#define SOUND_FILE_SIZE 64
+#define SOUND_MAX_CAUSES 3
+enum sound_reason { SOUND_ADVICE, SOUND_MARK, SOUND_DISMISSED };
+struct sound_entry_facts {
+    uint32_t stream, channel;   /* from 1 */
+    uint64_t counter;           /* of the entry */
+    int64_t start_ns, end_ns;   /* watch time */
+    double rate_hz, missing_s;  /* seconds of it that the ring did not have: silence in the file */
+    enum sound_reason reason;   /* a call that led to an advice, a mark, a call of a dismissed contact */
+    double low_hz, high_hz;     /* of what it is kept for; NAN where nothing is known */
+    char file[SOUND_FILE_SIZE]; /* within the folder of the clips */
+    char sha256[65];            /* of the file, lower-case hex */
+    uint64_t bytes;             /* of the file */
+    uint32_t n_causes;          /* ids of the call, the mark, the advice ... */
+    char causes[SOUND_MAX_CAUSES][FLOW_ID_SIZE];
+};
+enum status entry_body_sound(uint32_t run, const struct sound_entry_facts *facts, struct text *out);
+const char *sound_reason_text(enum sound_reason reason); /* "advice", "mark", "dismissed" */
 
 /* A signed text that fixes the entries first..last. */
 struct stamp_facts {

@@ -298,6 +298,7 @@ static void read_call(struct reading *reading, struct call *call)
 static void read_field(struct reading *reading, const struct note_field *field, struct note *note)
 {
     void *member = (char *)note + field->offset;
+    char key[NOTE_NAME_SIZE];
     switch (field->form) {
     case NOTE_FORM_TEXT:
     case NOTE_FORM_WORD:
@@ -316,7 +317,10 @@ static void read_field(struct reading *reading, const struct note_field *field, 
     case NOTE_FORM_FLAG:
         *(bool *)member = reading_bool(reading, field->name, false);
         break;
-    case NOTE_FORM_TIME: /* occurred_s, planned_s */
+    case NOTE_FORM_TIME: /* but occurred_s, which every note has */
+        note_time_key(field, key);
+        if (strcmp(key, "occurred_s") != 0 && json_object_get(reading->root, key))
+            *(int64_t *)member = read_time(reading, key);
         break;
     }
 }
@@ -325,8 +329,6 @@ static void read_note(struct reading *reading, struct note *note)
 {
     note->kind = (enum note_kind)read_word(reading, "note", NOTE_KIND_COUNT, note_word);
     note->occurred_ns = read_time(reading, "occurred_s");
-    if (json_object_get(reading->root, "planned_s"))
-        note->planned_ns = read_time(reading, "planned_s");
     note->known_ns = read_time(reading, "known_s");
     const struct note_field *field;
     for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++)

@@ -93,14 +93,14 @@ static void round_call(struct call *call)
 
 static void round_note(struct note *note)
 {
-    note->occurred_ns = time_round_us(note->occurred_ns);
-    note->planned_ns = time_round_us(note->planned_ns);
     note->known_ns = time_round_us(note->known_ns);
     const struct note_field *field;
     for (unsigned i = 0; (field = note_field_at(i)) != NULL; i++) {
         char *member = (char *)note + field->offset;
         if (field->form == NOTE_FORM_TEXT || field->form == NOTE_FORM_WORD)
             clean(member);
+        else if (field->form == NOTE_FORM_TIME)
+            *(int64_t *)(void *)member = time_round_us(*(int64_t *)(void *)member);
         else if (field->form == NOTE_FORM_NUMBER)
             to((double *)member, field->decimals);
     }

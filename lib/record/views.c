@@ -105,7 +105,10 @@ const struct schema_object views_schema[] = {
         COLUMN("job_kind") COLUMN("leg") COLUMN("hammer") COLUMN("sequence") COLUMN("blows")
         COLUMN("first_point") COLUMN("last_point") COLUMN("charge_kg") COLUMN("donor_kg") COLUMN("refusal") COLUMN("planned_s") COLUMN("finding")
         COLUMN("restrike") COLUMN("account") COLUMN("rank") COLUMN_CHECK COLUMN("cable_m")
-        COLUMN("hydrophone_depth_m") COLUMN("offset_m")),
+        COLUMN("hydrophone_depth_m") COLUMN("offset_m")
+        COLUMN("number_low") COLUMN("number_high") COLUMN("calves") COLUMN("certainty")
+        COLUMN("behaviour") COLUMN("in_zone_s") COLUMN("out_zone_s") COLUMN("closest_m") COLUMN("sighting")
+        COLUMN("mark") COLUMN("corrects")),
     VIEW("unheard",
         COLUMN("stream") COLUMN("channel") COLUMN("low_hz") COLUMN("high_hz") COLUMN("start_s")
         COLUMN("end_s") COLUMN("cause")),
@@ -123,6 +126,10 @@ const struct schema_object views_schema[] = {
     VIEW("position",
         COLUMN("latitude_deg") COLUMN("longitude_deg") COLUMN("heading_deg") COLUMN("course_deg")
         COLUMN("speed_m_s") COLUMN("source") COLUMN("whose") COLUMN("accuracy_m") COLUMN("occurred_s")),
+    VIEW("sound",
+        COLUMN("stream") COLUMN("channel") COLUMN("reason") COLUMN("start_s") COLUMN("end_s") COLUMN("low_hz")
+        COLUMN("high_hz") COLUMN("rate_hz") COLUMN("missing_s") COLUMN("file") COLUMN("bytes") COLUMN("sha256")
+        COLUMN("causes")),
     VIEW("stamp", COLUMN("first") COLUMN("last") COLUMN("text") COLUMN("signature") COLUMN("key")),
 };
 /* clang-format on */

@@ -28,6 +28,7 @@ static const char *const kind_words[NOTE_KIND_COUNT] = {
     [NOTE_CHECK] = "check",
     [NOTE_HAND_OVER] = "hand-over",
     [NOTE_MARK] = "mark",
+    [NOTE_CORRECTION] = "correction",
     [NOTE_REMARK] = "remark",
     [NOTE_ACKNOWLEDGEMENT] = "acknowledgement",
 };
@@ -41,6 +42,10 @@ static const char *const answer_words[] = {"seen", "passed", "stopped", "decline
                                            "good", "bad",    "gives",   "takes",    NULL};
 static const char *const check_words[] = {"clock",       "array", "channels", "noise",
                                           "field check", "radio", "sound",    NULL};
+static const char *const certainty_words[] = {"definite", "probable", "possible", NULL};
+static const char *const behaviour_words[] = {
+    "closing",     "opening", "passing",   "travelling", "milling",    "resting", "feeding",
+    "socialising", "diving",  "breaching", "bow riding", "hauled out", NULL};
 static const char *const source_words[] = {"off",   "soft start", "full power", "hold", "reduced", "stopped",
                                            "vibro", "drilling",   "line turn",  "test", NULL};
 
@@ -66,12 +71,19 @@ static const struct note_field fields[] = {
                 "(job); on, off (quieting, deterrent, other source); "
                 "ours, other (whose); good, bad (check); gives, takes (hand-over)"},
     {NUMBER(bearing_deg, 0, 360, ROUND_DECIMALS_DEG), .allowed = "0 to 360 degrees"},
+    {WORD(behaviour, behaviour_words),
+     .allowed = "closing, opening, passing, travelling, milling, resting, feeding, socialising, diving, "
+                "breaching, bow riding, hauled out"},
     {NUMBER(blows, 0, 100000, 0), .allowed = "0 to 100000 blows"},
     {NUMBER(cable_m, 0, 20000, ROUND_DECIMALS_M), .allowed = "0 to 20000 m"},
     {OTHER(calf, NOTE_FORM_FLAG), .allowed = "true, false"},
+    {NUMBER(calves, 0, 100000, 0), .allowed = "0 to 100000 calves"},
+    {WORD(certainty, certainty_words), .allowed = "definite, probable, possible"},
     {NUMBER(charge_kg, 0, 10000, 3), .allowed = "0 to 10000 kg"},
     {WORD(check, check_words), .allowed = "clock, array, channels, noise, field check, radio, sound"},
+    {NUMBER(closest_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
     {OTHER(contact, NOTE_FORM_WHOLE), .min = 1, .max = UINT32_MAX, .allowed = "a contact's number, from 1"},
+    {TEXT(corrects), .allowed = "the id of a note, at most 63 bytes"},
     {NUMBER(depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
     {NUMBER(distance_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
     {NUMBER(donor_kg, 0, 1000, 3), .allowed = "0 to 1000 kg"},
@@ -85,6 +97,7 @@ static const struct note_field fields[] = {
     {TEXT(hammer), .allowed = NAME_ALLOWED},
     {NUMBER(hydrophone_depth_m, 0, 12000, ROUND_DECIMALS_M), .allowed = "0 to 12000 m"},
     {TEXT(impulse), .allowed = "the id of an impulse, at most 63 bytes"},
+    {OTHER(in_zone_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {.name = "job",
      .form = NOTE_FORM_TEXT,
      .offset = offsetof(struct note, job),
@@ -97,10 +110,14 @@ static const struct note_field fields[] = {
     {TEXT(leg), .allowed = NAME_ALLOWED},
     {NUMBER(longitude_deg, -180, 180, ROUND_DECIMALS_POSITION),
      .allowed = "-180 to 180 degrees, east positive"},
+    {TEXT(mark), .allowed = "the id of a mark, at most 63 bytes"},
     {NUMBER(minutes, 0, 10080, 2), .allowed = "0 to 10080 minutes"},
     {NUMBER(number, 1, 100000, 0), .allowed = "1 to 100000 animals"},
+    {NUMBER(number_high, 1, 100000, 0), .allowed = "1 to 100000 animals"},
+    {NUMBER(number_low, 1, 100000, 0), .allowed = "1 to 100000 animals"},
     {OTHER(occurred_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {NUMBER(offset_m, 0, 100000, ROUND_DECIMALS_M), .allowed = "0 to 100000 m"},
+    {OTHER(out_zone_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {TEXT(person), .allowed = NAME_ALLOWED},
     {OTHER(planned_ns, NOTE_FORM_TIME), .allowed = "watch time in nanoseconds, not before 0"},
     {TEXT(rank), .allowed = NAME_ALLOWED},
@@ -109,6 +126,7 @@ static const struct note_field fields[] = {
     {OTHER(restrike, NOTE_FORM_FLAG), .allowed = "true, false"},
     {NUMBER(sea_state, 0, 12, 1), .allowed = "0 to 12"},
     {TEXT(sequence), .allowed = NAME_ALLOWED},
+    {TEXT(sighting), .allowed = "the id of a note, at most 63 bytes"},
     {WORD(source_state, source_words),
      .allowed = "off, soft start, full power, hold, reduced, stopped, vibro, drilling, line turn, test"},
     {TEXT(species), .allowed = NAME_ALLOWED},
@@ -317,6 +335,9 @@ static const char *missing_of(const struct note *note)
                : isnan(note->longitude_deg) ? "longitude_deg"
                                             : NULL;
     case NOTE_MARK:
+        return NULL;
+    case NOTE_CORRECTION:
+        return !*note->corrects ? "corrects" : NULL;
     case NOTE_REMARK:
         return !*note->text ? "text" : NULL;
     case NOTE_KIND_COUNT:
@@ -331,6 +352,21 @@ enum status note_check(const struct note *note, const char **out_missing)
     if (missing && out_missing)
         *out_missing = missing;
     return missing ? STATUS_BAD_FORMAT : STATUS_OK;
+}
+
+void note_time_key(const struct note_field *field, char out[NOTE_NAME_SIZE])
+{
+    size_t length = strlen(field->name) - 2; /* "ns" */
+    memcpy(out, field->name, length);
+    memcpy(out + length, "s", 2);
+}
+
+const char *const *note_words(const char *field)
+{
+    for (size_t i = 0; i < sizeof fields / sizeof fields[0]; i++)
+        if (strcmp(field, fields[i].name) == 0)
+            return fields[i].form == NOTE_FORM_WORD ? fields[i].words : NULL;
+    return NULL;
 }
 
 const char *note_kind_text(enum note_kind kind)

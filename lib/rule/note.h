@@ -14,7 +14,8 @@
 enum note_kind {
     NOTE_SIGN_ON,         /* person, watch (visual | acoustic | crew), station for crew */
     NOTE_SIGN_OFF,        /* person, watch */
-    NOTE_SIGHTING,        /* person, group, [species number calf distance_m bearing_deg leaving contact] */
+    NOTE_SIGHTING,        /* person, group, [species number calf distance_m bearing_deg leaving contact,
+                             and the fields from number_low on] */
     NOTE_DISTANCE,        /* person, contact, distance_m, [bearing_deg leaving] */
     NOTE_VERDICT,         /* person, contact, verdict (confirm | dismiss | left), text = reason */
     NOTE_RELEASE,         /* person: the named observer allows the start */
@@ -40,8 +41,10 @@ enum note_kind {
                    hydrophone_depth_m offset_m] */
     NOTE_HAND_OVER, /* person, answer (gives | takes), [text]: the watch goes from one to another, both sign
                      */
-    NOTE_MARK,      /* text */
-    NOTE_REMARK,    /* text */
+    NOTE_MARK, /* nothing: a moment that somebody wants to keep; what it was is said by a later note whose
+                  `mark` names it */
+    NOTE_CORRECTION, /* corrects (id of the note that is taken back), text: why */
+    NOTE_REMARK,     /* text */
     NOTE_KIND_COUNT
 };
 
@@ -86,6 +89,15 @@ struct note {
     double energy_kj;                   /* of the hammer */
     double elements;                    /* of the array that are active */
     double latitude_deg, longitude_deg; /* WGS84, north and east positive */
+    double number_low, number_high;     /* animals, at least and at most; `number` is the best */
+    double calves;                      /* of them */
+    double closest_m;                   /* least distance from the source */
+    int64_t in_zone_ns, out_zone_ns;    /* watch time at which it came into and left the zone; 0: not said */
+    char certainty[NOTE_NAME_SIZE];     /* "definite", "probable", "possible" */
+    char behaviour[NOTE_NAME_SIZE];     /* "closing", "travelling" ... */
+    char sighting[NOTE_NAME_SIZE];      /* id of another note of the same animals */
+    char mark[NOTE_NAME_SIZE];          /* id of the mark that this note completes */
+    char corrects[NOTE_NAME_SIZE];      /* id of the note that a correction takes back */
     bool calf;
     bool leaving; /* seen leaving the zone */
 };
@@ -126,6 +138,12 @@ enum status note_set(struct note *note, const char *field, const char *value, co
 
 /* Whether the note has what its kind needs; if not STATUS_OK, *out_missing is the field's name (static). */
 enum status note_check(const struct note *note, const char **out_missing);
+
+/* What an entry calls a field of NOTE_FORM_TIME: "planned_ns" is written as "planned_s", in seconds. */
+void note_time_key(const struct note_field *field, char out[NOTE_NAME_SIZE]);
+
+/* The words of a field of NOTE_FORM_WORD, ended by NULL; NULL for any other. */
+const char *const *note_words(const char *field);
 
 const char *note_kind_text(enum note_kind kind); /* "sign-on", "sighting", "source state" ... */
 bool note_kind_from_text(const char *text, enum note_kind *out);

@@ -168,6 +168,7 @@ void note_take(struct watch *watch, const struct note *note)
     case NOTE_QUIETING: /* the conditions' and the tally's */
     case NOTE_OTHER:
     case NOTE_MARK:
+    case NOTE_CORRECTION:
     case NOTE_REMARK:
     case NOTE_KIND_COUNT:
         break; /* recorded; no rule reads them yet */

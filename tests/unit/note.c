@@ -119,7 +119,7 @@ static void every_kind_says_what_it_misses(void **state)
         {NOTE_WEATHER, {{"visibility_m", "3000"}}},
         {NOTE_CHECK, {{"person", "A"}, {"check", "radio"}, {"answer", "good"}}},
         {NOTE_HAND_OVER, {{"person", "A"}, {"answer", "gives"}}},
-        {NOTE_MARK, {{"text", "x"}}},
+        {NOTE_CORRECTION, {{"corrects", "1.0.note.7"}}},
         {NOTE_REMARK, {{"text", "x"}}},
     };
     for (size_t i = 0; i < sizeof cases / sizeof cases[0]; i++) {

@@ -105,8 +105,11 @@ static void random_note(struct random *random, struct note *note)
     note->occurred_ns = random_time(random);
     note->known_ns = random_time(random);
     note->planned_ns = random_bits(random) % 2 ? random_time(random) : 0;
-    char *const texts[] = {note->person,  note->watch,  note->station, note->species,
-                           note->verdict, note->answer, note->advice,  note->source_state};
+    note->in_zone_ns = random_bits(random) % 2 ? random_time(random) : 0;
+    note->out_zone_ns = random_bits(random) % 2 ? random_time(random) : 0;
+    char *const texts[] = {note->person,   note->watch,  note->station,      note->species,   note->verdict,
+                           note->answer,   note->advice, note->source_state, note->certainty, note->behaviour,
+                           note->sighting, note->mark,   note->corrects};
     for (size_t i = 0; i < sizeof texts / sizeof texts[0]; i++)
         random_text(random, texts[i], NOTE_NAME_SIZE);
     random_text(random, note->job, IMPULSE_JOB_SIZE);
@@ -115,6 +118,10 @@ static void random_note(struct random *random, struct note *note)
     note->contact = (uint32_t)(random_bits(random) % 5);
     note->number = maybe(random, 0, 50);
     note->distance_m = maybe(random, 0, 20000);
+    note->number_low = maybe(random, 1, 50);
+    note->number_high = maybe(random, 1, 500);
+    note->calves = maybe(random, 0, 20);
+    note->closest_m = maybe(random, 0, 20000);
     note->bearing_deg = maybe(random, 0, 360);
     note->sea_state = maybe(random, 0, 9);
     note->visibility_m = maybe(random, 0, 40000);
@@ -235,6 +242,17 @@ static void assert_same_note(const struct note *a, const struct note *b)
     SAME(occurred_ns);
     SAME(known_ns);
     SAME(planned_ns);
+    SAME(in_zone_ns);
+    SAME(out_zone_ns);
+    SAME_TEXT(certainty);
+    SAME_TEXT(behaviour);
+    SAME_TEXT(sighting);
+    SAME_TEXT(mark);
+    SAME_TEXT(corrects);
+    SAME_NUMBER(number_low);
+    SAME_NUMBER(number_high);
+    SAME_NUMBER(calves);
+    SAME_NUMBER(closest_m);
     SAME_TEXT(person);
     SAME_TEXT(watch);
     SAME_TEXT(station);
@@ -537,6 +555,20 @@ static void marks_are_well_formed(void **state)
     struct clock_facts clock = {.map = &map, .zero_unix_ns = ZERO_NS, .offset_s = NAN};
     assert_int_equal(entry_body_clock(1, 1, 1, &clock, &body), STATUS_OK);
     assert_well_formed(body.data, "1.1.clock.1");
+    struct sound_entry_facts sound = {.stream = 2,
+                                      .channel = 1,
+                                      .counter = 7,
+                                      .end_ns = 5000000000,
+                                      .rate_hz = 96000,
+                                      .reason = SOUND_DISMISSED,
+                                      .low_hz = NAN,
+                                      .high_hz = NAN,
+                                      .file = "1.2.sound.7.flac",
+                                      .n_causes = 1,
+                                      .causes = {"1.2.call.3"}};
+    assert_int_equal(entry_body_sound(1, &sound, &body), STATUS_OK);
+    assert_well_formed(body.data, "1.2.sound.7");
+    assert_non_null(strstr(body.data, "\"reason\":\"dismissed\""));
     struct stamp_facts stamp = {.text = "x\ny\n", .first = 1, .last = 9};
     assert_int_equal(entry_body_stamp(1, 1, &stamp, &body), STATUS_OK);
     assert_well_formed(body.data, "1.0.stamp.1");
@@ -783,7 +815,7 @@ static void every_kind_has_a_view(void **state)
     static const char *const kinds[] = {"run",         "permit",  "job",      "source",  "call",
                                         "impulse",     "level",   "exposure", "contact", "phase",
                                         "advice",      "finding", "note",     "unheard", "health",
-                                        "calibration", "clock",   "position", "stamp"};
+                                        "calibration", "clock",   "position", "sound",   "stamp"};
     for (size_t i = 0; i < sizeof kinds / sizeof kinds[0]; i++)
         assert_true(views_has_kind(kinds[i]));
     assert_false(views_has_kind("entry"));

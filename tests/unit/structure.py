@@ -11,7 +11,7 @@ LIBC = {"assert.h", "complex.h", "errno.h", "float.h", "inttypes.h", "limits.h",
         "stdatomic.h", "stdbool.h", "stddef.h", "stdint.h", "stdio.h", "stdlib.h", "string.h", "immintrin.h", "smmintrin.h"}
 # A library's header, and the only places that may see it.
 OWNERS = {"sqlite3.h": ["daemon/ledger/"], "microhttpd.h": ["daemon/http/"], "portaudio.h": ["daemon/capture/"],
-          "libconfig.h": ["daemon/settings/"], "sndfile.h": ["daemon/input/recording.c", "daemon/verb/render.c"],
+          "libconfig.h": ["daemon/settings/"], "sndfile.h": ["daemon/input/recording.c", "daemon/sound/sound_file.c", "daemon/verb/render.c"],
           "sodium.h": ["lib/record/", "daemon/"], "jansson.h": ["lib/record/", "daemon/http/"],
           "fftw3.h": ["lib/dsp/", "lib/level/decidecades.c", "lib/scene/noise.c", "lib/call/pulse_shape.c"],
           "systemd/sd-daemon.h": ["daemon/"],
