@@ -211,7 +211,7 @@ static enum status create_board(struct chain *chain)
     return board_create(&setup, &chain->board);
 }
 
-/* A scan's sound is kept already; sound at a pace of its own would outrun any disk. */
+/* A scan's sound is kept already. */
 static enum status create_keeping(struct chain *chain)
 {
     struct keeping_setup setup = {.site = chain->setup.site,
@@ -219,16 +219,9 @@ static enum status create_keeping(struct chain *chain)
                                   .run = chain->run,
                                   .zero_unix_ns = chain->zero_unix_ns,
                                   .start_ns = chain->mark.outage_end_ns,
-                                  .n_streams = chain->n_streams};
-    if (chain->setup.scan)
-        return STATUS_OK;
-    for (uint32_t i = 0; i < chain->n_streams; i++) {
-        const struct input_facts *facts = stream_get_facts(chain->streams[i]);
-        bool paced = facts->live || chain->setup.site->streams[i].real_pace;
-        setup.streams[i] =
-            (struct disk_ring_stream){.rate_hz = facts->rate_hz, .n_channels = paced ? facts->n_channels : 0};
-    }
-    return keeping_create(&setup, &chain->sound);
+                                  .n_streams = chain->n_streams,
+                                  .streams = chain->streams};
+    return chain->setup.scan ? STATUS_OK : keeping_create(&setup, &chain->sound);
 }
 
 static enum status create_threads(struct chain *chain)

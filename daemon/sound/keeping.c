@@ -55,6 +55,13 @@ static void base_folder(const struct site *site, char out[SITE_PATH_SIZE + 8])
         snprintf(out, SITE_PATH_SIZE + 8, "%s.sound", site->ledger);
 }
 
+static struct disk_ring_stream facts_of(const struct keeping_setup *setup, uint32_t i)
+{
+    const struct input_facts *facts = stream_get_facts(setup->streams[i]);
+    bool paced = facts->live || setup->site->streams[i].real_pace;
+    return (struct disk_ring_stream){.rate_hz = facts->rate_hz, .n_channels = paced ? facts->n_channels : 0};
+}
+
 static enum status create_ring(const struct keeping_setup *setup, struct sound_keeping *keeping)
 {
     const struct sound_settings *settings = &setup->site->sound;
@@ -68,7 +75,8 @@ static enum status create_ring(const struct keeping_setup *setup, struct sound_k
                                    .run = setup->run,
                                    .zero_unix_ns = setup->zero_unix_ns,
                                    .n_streams = setup->n_streams};
-    memcpy(ring.streams, setup->streams, sizeof ring.streams);
+    for (uint32_t i = 0; i < setup->n_streams; i++)
+        ring.streams[i] = facts_of(setup, i);
     return disk_ring_create(&ring, &keeping->ring);
 }
 
@@ -77,9 +85,9 @@ static enum status create_keeper(const struct keeping_setup *setup, struct sound
     struct keeper_setup keeper = {
         .clips = keeping->clips, .around_s = setup->site->sound.around_s, .n_streams = setup->n_streams};
     for (uint32_t i = 0; i < setup->n_streams; i++)
-        if (setup->streams[i].n_channels > 0)
+        if (facts_of(setup, i).n_channels > 0)
             keeper.listening[i] =
-                keeping_listening_channel(&setup->site->streams[i], setup->streams[i].n_channels);
+                keeping_listening_channel(&setup->site->streams[i], facts_of(setup, i).n_channels);
     return keeper_create(&keeper, &keeping->keeper);
 }
 

@@ -9,6 +9,7 @@
 #include "settings/site.h"
 #include "sound/clip_store.h"
 #include "sound/disk_ring.h"
+#include "stream.h"
 #include <stdbool.h>
 
 struct sound_keeping;
@@ -20,7 +21,8 @@ struct keeping_setup {
     int64_t zero_unix_ns;
     int64_t start_ns; /* watch time at which the run begins */
     uint32_t n_streams;
-    struct disk_ring_stream streams[DISK_RING_MAX_STREAMS];
+    struct stream *const
+        *streams; /* opened; what has no pace but its own would outrun any disk, and is not kept */
 };
 
 /* *out is NULL where the settings keep no sound. STATUS_NO_MEMORY, STATUS_SYSTEM. A disk that does not take
