@@ -379,6 +379,9 @@ static enum status start_pages(struct chain *chain, struct problems *problems)
     for (uint32_t i = 0; i < chain->n_streams; i++)
         setup.listening[i] = keeping_listening_channel(&chain->setup.site->streams[i],
                                                        stream_get_facts(chain->streams[i])->n_channels);
+    char clips[SITE_PATH_SIZE + 8]; /* copied */
+    snprintf(clips, sizeof clips, "%s/clips", site->sound.folder);
+    setup.clips = *site->sound.folder ? clips : NULL;
     const struct http_callbacks callbacks = {take_note, chain};
     return http_start(&setup, &callbacks, problems, &chain->http);
 }

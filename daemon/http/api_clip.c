@@ -13,14 +13,14 @@
 
 #define PATH_SIZE 4096
 
-struct clip {
+struct kept_file {
     bool found;
     char file[256], sha256[65];
 };
 
 static enum status take_clip(void *context, int n, const char *const *columns)
 {
-    struct clip *clip = context;
+    struct kept_file *clip = context;
     (void)n;
     clip->found = true;
     snprintf(clip->file, sizeof clip->file, "%s", columns[0] ? columns[0] : "");
@@ -46,7 +46,7 @@ static bool has_digest(int fd, const char *wanted)
 static enum status ask(struct ledger *ledger, struct question *question)
 {
     struct review *review = (struct review *)question;
-    struct clip clip = {0};
+    struct kept_file clip = {0};
     char path[PATH_SIZE];
     const char *id = review->id;
     struct stat facts;
