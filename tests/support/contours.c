@@ -5,6 +5,7 @@
 #include <string.h>
 
 #define LONGEST_S 20.0
+#define TRACED 1.4
 
 static double tukey(double x, double share)
 {
@@ -83,21 +84,39 @@ static void lengths(const struct tone_shape *tone, double *out_low_s, double *ou
     *out_high_s = fmax(*out_low_s, fmin(LONGEST_S, fmin(0.8 * tone->max_s, 4 * tone->min_s)));
 }
 
+/* A sweep within the class's limits. Of a weak call the faint ends are not traced, and what is measured of
+ * the rest is from one end's mean to the other's: about 0.7 of it. So a class that asks for a sweep is drawn
+ * with TRACED times the least, or none of its calls could ever pass. */
+static double draw_sweep(const struct call_class *call_class, double seconds, struct random *random)
+{
+    const struct tone_shape *tone = &call_class->tone;
+    const double width_hz = call_class->high_hz - call_class->low_hz;
+    double most_hz = fmin(0.4 * width_hz, 0.5 * tone->max_rate_hz_s * seconds), sweep_hz;
+    double least = fmax(tone->min_sweep_hz, -fmin(most_hz, tone->max_extent_hz));
+    double greatest = fmin(tone->max_sweep_hz, fmin(most_hz, tone->max_extent_hz));
+    if (tone->min_sweep_hz > 0 || tone->max_sweep_hz < 0) {
+        const bool rises = tone->min_sweep_hz > 0;
+        const double nearest = rises ? tone->min_sweep_hz : -tone->max_sweep_hz;
+        const double furthest = rises ? tone->max_sweep_hz : -tone->min_sweep_hz;
+        const double low = TRACED * fmax(nearest, tone->min_extent_hz);
+        const double high = fmin(fmin(furthest, 0.9 * width_hz), 0.8 * tone->max_rate_hz_s * seconds);
+        sweep_hz = low + fmax(0, fmin(high, tone->max_extent_hz) - low) * random_between(random, 0, 1);
+        return rises ? sweep_hz : -sweep_hz;
+    }
+    do
+        sweep_hz = least + (greatest - least) * random_between(random, 0.1, 0.9);
+    while (fabs(sweep_hz) < 1.2 * tone->min_extent_hz && greatest - least > 2.4 * tone->min_extent_hz);
+    return sweep_hz;
+}
+
 static void draw_any(struct contour_signal *signal, const struct call_class *call_class,
                      struct random *random)
 {
     const struct tone_shape *tone = &call_class->tone;
     double low_s, high_s, width_hz = call_class->high_hz - call_class->low_hz;
     lengths(tone, &low_s, &high_s);
-    double seconds = random_between(random, low_s, high_s), sweep_hz, low_hz;
-    double most_hz = fmin(0.4 * width_hz, 0.5 * tone->max_rate_hz_s * seconds);
-    double least = fmax(tone->min_sweep_hz, -fmin(most_hz, tone->max_extent_hz));
-    double greatest = fmin(tone->max_sweep_hz, fmin(most_hz, tone->max_extent_hz));
-    if (least > greatest)
-        least = greatest = tone->min_sweep_hz > 0 ? tone->min_sweep_hz : tone->max_sweep_hz;
-    do
-        sweep_hz = least + (greatest - least) * random_between(random, 0.1, 0.9);
-    while (fabs(sweep_hz) < 1.2 * tone->min_extent_hz && greatest - least > 2.4 * tone->min_extent_hz);
+    double seconds = random_between(random, low_s, high_s);
+    double sweep_hz = draw_sweep(call_class, seconds, random), low_hz;
     low_hz = call_class->low_hz + random_between(random, 0.05, 0.95) * (width_hz - fabs(sweep_hz));
     signal->n = (uint32_t)(seconds * signal->rate_hz);
     for (uint32_t i = 0; i < signal->n; i++)
