@@ -17,11 +17,10 @@ static int64_t since_ns(const struct watch *watch)
 /* Of the last 24 h, this outage included. */
 static int64_t in_a_day_ns(const struct watch *watch)
 {
-    struct spans all = watch->outage.past;
-    if (since_ns(watch) >= 0)
-        spans_add(&all, since_ns(watch), watch->now_ns);
-    spans_forget_before(&all, watch->now_ns - DAY_NS);
-    return spans_total_ns(&all);
+    int64_t day_ns = watch->now_ns - DAY_NS, before_ns = spans_since_ns(&watch->outage.past, day_ns);
+    if (since_ns(watch) < 0)
+        return before_ns;
+    return before_ns + watch->now_ns - (since_ns(watch) > day_ns ? since_ns(watch) : day_ns);
 }
 
 /* What forbids going on beyond the first minutes; NULL: nothing. */

@@ -22,11 +22,10 @@ static struct shift *shift_of(struct watch *watch, const char *name)
 
 static int64_t in_a_day_ns(const struct shift *shift, int64_t now_ns)
 {
-    struct spans all = shift->past;
-    if (shift->on_ns >= 0)
-        spans_add(&all, shift->on_ns, now_ns);
-    spans_forget_before(&all, now_ns - DAY_NS);
-    return spans_total_ns(&all);
+    int64_t since_ns = now_ns - DAY_NS, before_ns = spans_since_ns(&shift->past, since_ns);
+    if (shift->on_ns < 0)
+        return before_ns;
+    return before_ns + now_ns - (shift->on_ns > since_ns ? shift->on_ns : since_ns);
 }
 
 /* Of two who are off watch, whose hours may rather be forgotten: fewer in 24 h, or off before. */

@@ -44,11 +44,10 @@ static bool lacks_history(const struct watch *watch, const char *poor, struct wh
     const struct permit_start *rule = &watch->permit->start;
     const struct start_state *state = &watch->start;
     int64_t since_ns = watch->now_ns - time_from_s(rule->good_watch_within_hours * 3600);
-    struct spans good = state->good;
+    int64_t good_ns = spans_since_ns(&state->good, since_ns);
     if (state->good_since_ns >= 0)
-        spans_add(&good, state->good_since_ns, watch->now_ns);
-    spans_forget_before(&good, since_ns);
-    double minutes = time_to_s(spans_total_ns(&good)) / 60;
+        good_ns += watch->now_ns - (state->good_since_ns > since_ns ? state->good_since_ns : since_ns);
+    double minutes = time_to_s(good_ns) / 60;
     if (rule->good_watch_minutes > 0 && minutes < rule->good_watch_minutes)
         why_reset(why, rule->clause,
                   "%.80s, and in the last %g h there were %.0f of %g min of watch by day in good conditions",

@@ -114,3 +114,12 @@ void spans_newest(struct spans *spans, int64_t total_ns)
     spans->n -= first;
     memmove(spans->all, spans->all + first, spans->n * sizeof spans->all[0]);
 }
+
+int64_t spans_since_ns(const struct spans *spans, int64_t time_ns)
+{
+    int64_t total = 0;
+    for (uint32_t i = spans->n; i > 0 && spans->all[i - 1].end_ns > time_ns; i--)
+        total += spans->all[i - 1].end_ns -
+                 (spans->all[i - 1].start_ns > time_ns ? spans->all[i - 1].start_ns : time_ns);
+    return total;
+}

@@ -36,6 +36,8 @@ void spans_without(const struct spans *a, const struct spans *b, struct spans *o
 void spans_forget_before(struct spans *spans, int64_t time_ns);
 /* Leaves only the newest total_ns of them. */
 void spans_newest(struct spans *spans, int64_t total_ns);
+/* The sum of what lies after that time. */
+int64_t spans_since_ns(const struct spans *spans, int64_t time_ns);
 /* The sum of all stretches. */
 int64_t spans_total_ns(const struct spans *spans);
 

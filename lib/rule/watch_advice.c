@@ -249,14 +249,13 @@ static void want_not_ready(const struct watch *watch, struct wanted *wanted)
     need_start(watch, wanted);
 }
 
-static void want(const struct watch *watch, enum station station, struct wanted *wanted)
+static void want(const struct watch *watch, const struct contact *lead, struct wanted *wanted)
 {
     wanted->key =
         (struct advice_key){0}; /* the rest of the texts is left as it is: this runs at every event */
     why_set(&wanted->why, "", "");
     wanted->until_ns = -1;
     wanted->needs[0] = '\0';
-    const struct contact *lead = contact_lead(watch, station == STATION_CREW);
     if (source_sounds(watch->phase)) {
         want_while_sounding(watch, lead, wanted);
     } else if (watch->phase == PHASE_BREAK) {
@@ -316,33 +315,37 @@ static void add_end(const struct watch *watch, const struct advice_key *old, str
     wanted->why = ended;
 }
 
-static void settle_station(struct watch *watch, enum station station)
+static void settle_station(struct watch *watch, enum station station, const struct wanted *now)
 {
-    struct wanted wanted;
     struct advice_outcome advice;
     struct advice_key *key = &watch->keys[station];
-    want(watch, station, &wanted);
-    if (wanted.key.ground == GROUND_NONE)
+    if (now->key.ground == GROUND_NONE)
         return;
     struct watch_advice *present = in_force(watch, station);
-    bool same = present && key->word == wanted.key.word && key->ground == wanted.key.ground &&
-                key->contact == wanted.key.contact && key->condition == wanted.key.condition &&
-                key->confirmed == wanted.key.confirmed;
+    bool same = present && key->word == now->key.word && key->ground == now->key.ground &&
+                key->contact == now->key.contact && key->condition == now->key.condition &&
+                key->confirmed == now->key.confirmed;
     if (same) { /* people see the newest figures; the situation is the same, and so is the advice */
-        refresh(watch, &wanted, &present->advice);
+        refresh(watch, now, &present->advice);
         return;
     }
+    struct wanted wanted = *now;
     add_end(watch, key, &wanted);
     why_add_cause(&wanted.why, watch->recent.causes[0]);
     fill(watch, station, &wanted, &advice);
-    *key = wanted.key;
+    *key = now->key;
     watch_say_advice(watch, &advice);
 }
 
 void advice_settle(struct watch *watch)
 {
-    settle_station(watch, STATION_OBSERVER);
-    settle_station(watch, STATION_CREW);
+    const struct contact *lead = contact_lead(watch, false), *of_crew = contact_lead(watch, true);
+    struct wanted wanted;
+    want(watch, lead, &wanted);
+    settle_station(watch, STATION_OBSERVER, &wanted);
+    if (of_crew != lead) /* else both are told the same */
+        want(watch, of_crew, &wanted);
+    settle_station(watch, STATION_CREW, &wanted);
 }
 
 /* What the observer's voice did is not the station's own answer, and stands beside it. */

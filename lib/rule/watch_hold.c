@@ -95,12 +95,12 @@ int64_t contact_all_clear_ns(const struct watch *watch, bool of_starts)
     int64_t latest = -1;
     for (uint32_t i = 0; i < watch->contacts.n; i++) {
         const struct contact *contact = &watch->contacts.all[i];
-        if (!contact->holding || (of_starts && !contact_holds_start(contact, watch->permit, watch->now_ns)))
+        if (!contact->holding)
             continue;
         for (uint32_t zone = 0; zone < watch->permit->n_zones; zone++) {
             int64_t clears = contact_zone_clear_ns(contact, watch->permit, zone);
-            bool counts = !of_starts || strongest(&watch->permit->zones[zone]) >= ACTION_DELAY;
-            if (counts && clears > watch->now_ns && clears > latest)
+            if (clears > watch->now_ns && clears > latest &&
+                (!of_starts || strongest(&watch->permit->zones[zone]) >= ACTION_DELAY))
                 latest = clears;
         }
     }

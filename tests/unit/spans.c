@@ -86,6 +86,7 @@ static void folded_spans_err_to_one_side(enum spans_full full, uint64_t seed)
                 exact += flags[k];
             struct spans late = spans;
             spans_forget_before(&late, since);
+            assert_int_equal(spans_since_ns(&spans, since), spans_total_ns(&late));
             int64_t over = spans_total_ns(&late) - exact;
             over = full == SPANS_FOLD_LATER ? over : -over;
             assert_true(over >= 0);
