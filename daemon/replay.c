@@ -21,6 +21,7 @@ struct replay {
     bool has_zero;
     bool cut;           /* see replay_set_cut */
     int64_t now_ns;     /* how far the watch has come */
+    int64_t event_ns;   /* when it took the last event */
     enum status status; /* of the callbacks */
     char *problem;      /* of the call in progress */
     struct text body;
@@ -89,7 +90,10 @@ static void give(struct replay *replay, const struct outcome *outcome)
 
 static void take_sums(void *context, const struct outcome *outcome)
 {
-    give(context, outcome);
+    struct replay *replay = context;
+    give(replay, outcome);
+    if (outcome->kind == OUTCOME_FINDING && replay->watch)
+        watch_take_finding(replay->watch, outcome, NULL);
 }
 
 static void take_outcome(void *context, const struct outcome *outcome)
@@ -121,7 +125,7 @@ static enum status push(struct replay *replay, const struct entry *entry, int64_
         return STATUS_OK;
     if (status == STATUS_OK) {
         status = watch_push(replay->watch, &event, &sink);
-        replay->now_ns = watch_ns;
+        replay->now_ns = replay->event_ns = watch_ns;
     }
     if (status != STATUS_OK) {
         char what[80];
@@ -301,8 +305,13 @@ static enum status take_for_tally(struct replay *replay, const struct entry *ent
     if (strcmp(entry->kind, "level") == 0 && tally_wants_levels(replay->tally))
         return take_levels(replay, entry, watch_ns);
     if (replay->rebuilds && strcmp(entry->kind, "finding") == 0 &&
-        entry_finding(entry->body, &outcome) == STATUS_OK)
+        entry_finding(entry->body, &outcome) == STATUS_OK) {
+        const struct outcome_sink sink = {take_outcome, replay};
         tally_set_said(replay->tally, &outcome);
+        /* As it was: at the end of the event that brought it, or of the next where time alone did. */
+        if (outcome.stream > 0)
+            watch_take_finding(replay->watch, &outcome, watch_ns == replay->event_ns ? &sink : NULL);
+    }
     return STATUS_OK;
 }
 

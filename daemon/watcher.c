@@ -86,6 +86,8 @@ static void take_sums(void *context, const struct outcome *outcome)
     struct watcher *watcher = context;
     hearing_take(watcher->hearing, outcome);
     keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
+    if (outcome->kind == OUTCOME_FINDING)
+        watch_take_finding(watcher->setup.watch, outcome, NULL);
 }
 
 static void take_outcome(void *context, const struct outcome *outcome)

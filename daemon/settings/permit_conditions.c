@@ -107,12 +107,16 @@ static void read_staff(struct permit_reader *reader, struct group_reader *root)
 /* limits = { criteria = { value = ["germany-2008"]; mark; source } }. */
 static void read_limits(struct permit_reader *reader, struct group_reader *root)
 {
+    static const char *const actions[] = {"log", NULL, NULL, "hold", "reduce", "stop"};
     struct permit *permit = reader->permit;
     struct group_reader group;
+    unsigned action = ACTION_LOG;
     if (!group_child(root, "limits", READER_OPTIONAL, &group))
         return;
     permit->n_criteria = value_texts(reader, &group, "criteria", READER_REQUIRED, permit->criteria[0],
                                      sizeof permit->criteria[0], PERMIT_MAX_CRITERIA);
+    value_word(reader, &group, "action", READER_OPTIONAL, actions, 6, &action);
+    permit->limit_action = (enum permit_action)action;
     group_done(&group);
 }
 

@@ -36,5 +36,6 @@ extern const struct condition condition_stop;
 extern const struct condition condition_job;
 extern const struct condition condition_quality;
 extern const struct condition condition_charge;
+extern const struct condition condition_limit;
 
 #endif

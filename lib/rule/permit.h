@@ -82,9 +82,9 @@ struct permit_clearance {
     uint32_t n_species; /* 0: any */
     char species[PERMIT_MAX_SPECIES][NOTE_NAME_SIZE];
     enum species_policy species_unknown;
-    double minutes;    /* since the last detection inside a zone */
+    double minutes;                       /* since the last detection inside a zone */
     double deeper_than_m, deeper_minutes; /* in place of them where the water is deeper; 0: not stated */
-    bool leaving_ends; /* seen leaving ends it at once */
+    bool leaving_ends;                    /* seen leaving ends it at once */
     char clause[PERMIT_TEXT_SIZE];
 };
 
@@ -272,6 +272,7 @@ struct permit {
     char post_watch_clause[PERMIT_TEXT_SIZE];
     uint32_t n_criteria; /* noise limits: ids of criteria files that the site must hold the source against */
     char criteria[PERMIT_MAX_CRITERIA][PERMIT_NAME_SIZE];
+    enum permit_action limit_action; /* what is asked for where one is passed: log, hold, reduce, stop */
     uint32_t n_records;
     struct permit_record records[PERMIT_MAX_RECORDS];
 

@@ -260,8 +260,21 @@ enum status watch_push(struct watch *watch, const struct event *event, const str
     take(watch, &completed);
     if (event->kind != EVENT_LEVEL)
         settle(watch);
+    if (limit_take_pending(watch))
+        settle(watch);
     watch->sink = NULL;
     return STATUS_OK;
+}
+
+void watch_take_finding(struct watch *watch, const struct outcome *finding, const struct outcome_sink *sink)
+{
+    limit_keep(watch, finding);
+    if (!sink)
+        return;
+    watch->sink = sink;
+    if (limit_take_pending(watch))
+        settle(watch);
+    watch->sink = NULL;
 }
 
 bool watch_wants_position(const struct watch *watch, const struct position *position)

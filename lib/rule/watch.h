@@ -74,6 +74,11 @@ bool watch_wants_position(const struct watch *watch, const struct position *posi
  * a ledger has its range, and settings that changed since rewrite nothing. watch_push does it by itself. */
 void watch_set_range(const struct watch *watch, struct event *event);
 
+/* A finding of the tally's (a limit is passed, such a finding is answered; others change nothing): what the
+ * permit asks for then follows. From inside a callback of push or advance (sink NULL) at the end of the push
+ * in progress, or of the next; else at once. */
+void watch_take_finding(struct watch *watch, const struct outcome *finding, const struct outcome_sink *sink);
+
 /* Lets time pass: timers that are due run in order, each at its own due time. */
 enum status watch_advance(struct watch *watch, int64_t watch_ns, const struct outcome_sink *sink);
 

@@ -5,7 +5,7 @@
 static const struct condition *const all[] = {
     &condition_deterrent, &condition_quieting, &condition_soft_start, &condition_start,    &condition_outage,
     &condition_turn,      &condition_test,     &condition_staff,      &condition_override, &condition_stop,
-    &condition_job,       &condition_quality,  &condition_charge,
+    &condition_job,       &condition_quality,  &condition_charge,     &condition_limit,
 };
 #define N_CONDITIONS (sizeof all / sizeof all[0])
 

@@ -194,6 +194,23 @@ struct quality_state {
     bool found;
 };
 
+#define LIMIT_MAX_PENDING 4
+
+/* A finding of the tally's: a limit is passed, or such a finding is answered. */
+struct limit_finding {
+    bool answered; /* what was passed is not, since a person has said whose impulses these are */
+    char id[FLOW_ID_SIZE];
+    char job[IMPULSE_JOB_SIZE], text[FLOW_TEXT_SIZE], clause[FLOW_TEXT_SIZE];
+};
+
+/* condition_limit.c */
+struct limit_state {
+    bool on; /* a limit is passed, and the permit asks for something */
+    struct limit_finding passed;
+    uint32_t n_pending; /* until the end of the push in progress, or of the next */
+    struct limit_finding pending[LIMIT_MAX_PENDING];
+};
+
 #define RISE_LEVELS 10
 
 /* condition_soft_start.c: how the present soft start rises */
@@ -278,6 +295,7 @@ struct watch {
     struct rise rise;
     struct stop_state stop;
     struct charge_state charge;
+    struct limit_state limit;
     struct quality_state quality;
     struct plan_state plan;
     char unanswered[FLOW_ID_SIZE]; /* the advice that nobody answered and that was found so */
@@ -371,6 +389,9 @@ void conditions_judge_start(struct watch *watch);
 bool conditions_need_pre_watch(const struct watch *watch, enum phase to);
 /* What is left of an action while an override is in force (condition_override.c). */
 enum permit_action override_limit(const struct watch *watch, enum permit_action action);
+/* A finding of the tally's waits (condition_limit.c); whether any waited, and is taken. */
+void limit_keep(struct watch *watch, const struct outcome *finding);
+bool limit_take_pending(struct watch *watch);
 /* The program stops running: a stretch of watch in good conditions ends (condition_start.c). */
 void start_end_stretch(struct watch *watch);
 void conditions_show(const struct watch *watch, struct watch_view *view);
