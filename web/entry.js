@@ -16,6 +16,12 @@ const KINDS = {
       { name: "leaving", label: "Leaving the zone", type: "checkbox" },
     ],
   },
+  "In full": {
+    kind: "sighting", person: true,
+    fields: (permit) => [...KINDS.Sighting.fields(permit), number("number_low", "At least", { min: 1 }), number("number_high", "At most", { min: 1 }), number("calves", "Calves"), select("certainty", "Certainty", ["", "definite", "probable", "possible"]),
+      select("behaviour", "Behaviour", ["", "closing", "opening", "passing", "travelling", "milling", "resting", "feeding", "socialising", "diving", "breaching", "bow riding", "hauled out"]), number("closest_m", "Closest, m"),
+      { name: "in_zone_ns", label: "In zone, UTC", type: "time" }, { name: "out_zone_ns", label: "Out of it, UTC", type: "time" }, { name: "sighting", label: "Same as note", placeholder: "1.0.note.7" }, { name: "species", label: "Species" }],
+  },
   Source: { kind: "source state", fields: () => [select("source_state", "The source is now", SOURCE_STATES), number("energy_kj", "Energy, kJ"), number("elements", "Active elements", { step: 1 }), number("minutes", "Expected, min (line turn)")] },
   Job: { kind: "job", fields: () => [{ name: "job", label: "Pile, line or charge", required: true, maxlength: 31 }, select("answer", "It", [{ value: "open", text: "opens" }, { value: "begin", text: "begins (line)" }, { value: "end", text: "ends (line)" }, { value: "close", text: "closes" }]), select("job_kind", "Kind", [{ value: "", text: "" }, "pile", "line", "test", "charge"]), number("energy_kj", "Planned energy, kJ"), number("charge_kg", "Charge, kg")] },
   Plan: { kind: "plan", fields: () => [{ name: "planned_ns", label: "First impulse at, UTC", type: "time", required: true }] },
@@ -32,7 +38,6 @@ const KINDS = {
     fields: () => [select("impulse", "Impulse", impulses().map((i) => ({ value: i.id, text: utc(i.time_s) + ", " + (i.sel_db === null ? "no level" : i.sel_db.toFixed(1) + " dB") + ", " + i.whose }))), select("answer", "Its train is", ["other", "ours"])],
   },
   Remark: { kind: "remark", fields: () => [{ name: "text", label: "Remark", required: true, maxlength: 200, wide: true }] },
-  Mark: { kind: "mark", fields: () => [{ name: "text", label: "What was it?", required: true, maxlength: 200, wide: true }] },
 };
 
 let asker = null; // the button that could not do its work without a name
@@ -99,11 +104,12 @@ export function field(spec) {
   return el("label", { class: (wide ? "wide " : "") + (spec.type === "checkbox" ? "tick" : "") }, el("span", { text: label }), input);
 }
 
-/** The next "HH:MM" of UTC, as watch time in nanoseconds. */
-function nextTime(text) {
+/** "HH:MM" of UTC, the next one of a plan and the last one of what has happened, as watch time in nanoseconds. */
+function timeOf(text, next) {
   const [hours, minutes] = text.split(":").map(Number), now = unixOf(watchNow());
   let at = Math.floor(now / 86400) * 86400 + hours * 3600 + minutes * 60;
-  if (at < now) at += 86400;
+  if (next && at < now) at += 86400;
+  if (!next && at > now) at -= 86400;
   return String(Math.round(at - unixOf(0))) + "000000000";
 }
 
@@ -112,7 +118,7 @@ export function values(form) {
   const note = {};
   for (const input of named(form)) {
     if (!input.name || (input.type !== "checkbox" && input.value.trim() === "") || (input.type === "checkbox" && !input.checked)) continue;
-    note[input.name] = input.type === "checkbox" ? true : input.type === "time" ? nextTime(input.value) : input.type === "number" ? Number(input.value) : input.value.trim();
+    note[input.name] = input.type === "checkbox" ? true : input.type === "time" ? timeOf(input.value, input.name === "planned_ns") : input.type === "number" ? Number(input.value) : input.value.trim();
   }
   return note;
 }

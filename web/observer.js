@@ -7,6 +7,7 @@ import { drawContacts, showContact } from "/contacts.js";
 import { chooseEntry, person, send, startEntry } from "/entry.js";
 import { drawLadder } from "/ladder.js";
 import { drawHandOver, startHandOver } from "/handover.js";
+import { drawMarks, markNow, remindOfMarks, startHear } from "/hear.js";
 import { startStrips } from "/strips.js";
 import { drawVoice, startVoice } from "/voice.js";
 import { drawResearch, drawSums, startSums } from "/sums.js";
@@ -102,7 +103,7 @@ function drawPlan(state) {
 function drawPeople(state) {
   keyed($("people"), state.people, (p) => p.name + "|" + p.watch + "|" + p.station, (p) => {
     const off = el("button", { type: "button", class: "plain", text: "Sign off", "aria-label": "Sign off " + p.name });
-    off.addEventListener("click", () => send({ kind: "sign-off", person: p.name, watch: p.watch, ...(p.station ? { station: p.station } : {}) }));
+    off.addEventListener("click", () => remindOfMarks() || send({ kind: "sign-off", person: p.name, watch: p.watch, ...(p.station ? { station: p.station } : {}) }));
     return el("li", { class: "split" }, el("span"), off);
   }, (node, p) => setText(node.firstChild, `${p.name}, ${p.watch}${p.station ? " (" + p.station + ")" : ""}, ${span(watchNow() - p.since_s)}`));
   keyed($("names"), state.people, (p) => p.name, (p) => el("option", { value: p.name }), () => {});
@@ -215,6 +216,7 @@ function draw() {
   drawPhase(state);
   drawPlan(state);
   drawPeople(state);
+  drawMarks(state);
   drawHandOver(state, site);
   drawSource(state);
   drawHearing(state);
@@ -240,7 +242,10 @@ function startForms() {
   startEntry(() => site, () => (link.state ? link.state.impulses : []));
   document.addEventListener("keydown", (event) => {
     if (event.target.closest("input, select, textarea") || event.ctrlKey || event.altKey || event.metaKey || remembered("keys", "on") !== "on") return;
-    if (event.key === "s") {
+    if (event.key === "m") {
+      event.preventDefault();
+      markNow();
+    } else if (event.key === "s") {
       event.preventDefault();
       chooseEntry("Sighting", site, true);
     } else if (event.key === "c") showContact(-1);
@@ -251,6 +256,7 @@ startPalette();
 startSound($("sound"));
 startForms();
 startStrips();
+startHear();
 startVoice();
 startHandOver();
 startSums(draw);

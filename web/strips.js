@@ -1,5 +1,6 @@
 // Strips of sound: low, middle, high band. Time runs along, loudness is shade, above what is usual in its row;
 // calls are marks in the margin below, impulses ticks, unheard time hatching.
+import { hearCall } from "/hear.js";
 import { band as bandText, el, hertz, keyed, link, local, setText, utc, watchNow } from "/page.js";
 
 const MARGIN = 20; // of the marks, in pixels at 15 px letters
@@ -10,6 +11,7 @@ const bands = new Map(); // name -> { low_hz, high_hz, rows, times: [], levels: 
 const calls = new Map(); // id -> call, for as long as the strips reach back
 const impulses = new Map();
 let windowS = 60;
+let backS = 0; // how far the strips are scrolled back
 let newest = null;
 let asking = false;
 let stream = 1;
@@ -173,10 +175,10 @@ export function drawStrips() {
   if (!link.state) return;
   remember();
   const holder = document.getElementById("strips");
-  const end = newest === null ? watchNow() : newest + 0.25, start = end - windowS, shade = colours();
+  const end = (newest === null ? watchNow() : newest + 0.25) - backS, start = end - windowS, shade = colours();
   const order = ["high", "middle", "low"].filter((name) => bands.has(name));
   keyed(holder, [...order, "axis"], (name) => name, (name) => name === "axis" ? el("div", { class: "time_axis" }) :
-    el("figure", {}, el("figcaption", {}, el("b", { text: name }), el("span")), el("canvas", { role: "img" })), (node, name) => {
+    el("figure", {}, el("figcaption", {}, el("b", { text: name }), el("span")), el("canvas", { role: "img", onclick: (event) => pick(event, name) })), (node, name) => {
     if (name === "axis") {
       keyed(node, order.length ? [0, 1, 2, 3, 4] : [], (i) => i, () => el("span"), (mark, i) => setText(mark, utc(start + (i * windowS) / 4) + (i === 4 ? " UTC" : "")));
       return;
@@ -192,10 +194,25 @@ export function drawStrips() {
   });
 }
 
+/** The place that was pointed at, with the call that is there; calls are also in the list below, for the keys. */
+function pick(event, name) {
+  const box = event.target.getBoundingClientRect(), end = newest + 0.25 - backS;
+  const time_s = end - windowS * (1 - (event.clientX - box.left) / box.width), near = windowS / 100;
+  const call = callsIn(bands.get(name), time_s - near, time_s + near).pop();
+  document.dispatchEvent(new CustomEvent("pick", { detail: { stream, time_s, call } }));
+}
+
+/** By half of what is shown, as far as columns are kept; 0: now. */
+function scroll(steps) {
+  backS = steps ? Math.min(Math.max(0, backS - (steps * windowS) / 2), Math.max(0, KEEP_S - windowS)) : 0;
+  setText(document.getElementById("sound_stream"), backS ? `${Math.round(backS / 6) / 10} min back` : "");
+  drawStrips();
+}
+
 function listCalls() {
   if (!link.state) return;
-  keyed(document.getElementById("calls"), link.state.calls.slice(0, 12), (call) => call.id, () => el("li"), (node, call) =>
-    setText(node, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}${call.group === "unknown" ? "" : `, ${call.certainty}`}, ${bandText(call.low_hz, call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
+  keyed(document.getElementById("calls"), link.state.calls.slice(0, 12), (call) => call.id, (call) => el("li", { class: "split" }, el("span"), el("button", { type: "button", class: "plain", text: "Hear", "aria-label": `Hear ${call.class} of ${utc(call.start_s)}`, onclick: () => hearCall(call) })), (node, call) =>
+    setText(node.firstChild, `${utc(call.start_s)} UTC (${local(call.start_s)} local): ${call.class}, ${call.group}${call.group === "unknown" ? "" : `, ${call.certainty}`}, ${bandText(call.low_hz, call.high_hz)}, ${(call.end_s - call.start_s).toFixed(1)} s` +
       (call.n_pulses ? `, ${call.n_pulses} pulses` : "") + `, ${call.snr_db.toFixed(0)} dB above the background, ${call.level_db.toFixed(0)} dB${call.relative ? " rel." : " re 1 µPa"}, channel ${call.channel}`));
 }
 
@@ -205,11 +222,12 @@ export function startStrips() {
     const button = el("button", { type: "button", class: "plain", text: name, "aria-pressed": String(seconds === windowS) });
     button.addEventListener("click", () => {
       windowS = seconds;
-      for (const other of holder.children) other.setAttribute("aria-pressed", String(other === button));
-      drawStrips();
+      for (const other of holder.querySelectorAll("[aria-pressed]")) other.setAttribute("aria-pressed", String(other === button));
+      scroll(0);
     });
     holder.append(button);
   }
+  for (const [name, steps] of [["Earlier", -1], ["Later", 1], ["Now", 0]]) holder.append(el("button", { type: "button", class: "plain", text: name, onclick: () => scroll(steps) }));
   document.addEventListener("palette", drawStrips);
   setInterval(async () => {
     await ask();
