@@ -10,7 +10,8 @@
 struct recorder {
     struct outbox *outbox;
     struct minutes *minutes;
-    struct text body; /* of the entry that is being written */
+    struct minute_sink made; /* take may be NULL */
+    struct text body;        /* of the entry that is being written */
     uint32_t run;
     int64_t zero_unix_ns;
     uint64_t clock_counters[SITE_MAX_STREAMS + 1], calibration_counters[SITE_MAX_STREAMS + 1];
@@ -75,7 +76,15 @@ enum status recorder_begin(struct recorder *recorder, const struct run_mark *mar
 
 static void take_minute(void *context, const struct minute_body *minute)
 {
-    put(context, minute->watch_ns, "level", minute->body);
+    struct recorder *recorder = context;
+    put(recorder, minute->watch_ns, "level", minute->body);
+    if (recorder->made.take)
+        recorder->made.take(recorder->made.context, minute);
+}
+
+void recorder_set_minutes(struct recorder *recorder, const struct minute_sink *sink)
+{
+    recorder->made = *sink;
 }
 
 enum status recorder_take(struct recorder *recorder, const struct outcome *outcome)

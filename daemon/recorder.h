@@ -7,6 +7,7 @@
 #include "flow.h"
 #include "ledger/outbox.h"
 #include "record/marks.h"
+#include "record/minute.h"
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -41,6 +42,9 @@ enum status recorder_calibration(struct recorder *recorder, int64_t watch_ns, ui
 /* A clip that is on the disk; the facts carry their counter. *out_id is its entry's. */
 enum status recorder_sound(struct recorder *recorder, int64_t watch_ns, const struct sound_entry_facts *facts,
                            char out_id[FLOW_ID_SIZE]);
+
+/* Who is given each minute's levels when its entry has been made; before the first outcome. */
+void recorder_set_minutes(struct recorder *recorder, const struct minute_sink *sink);
 
 /* What is still held (a minute's levels) goes out; at the end of a run. */
 enum status recorder_finish(struct recorder *recorder, int64_t watch_ns);

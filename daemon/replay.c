@@ -186,7 +186,6 @@ static enum status make_tally(struct replay *replay, int64_t before_seq)
     tally_destroy(replay->tally);
     replay->tally = tally;
     replay->facts.sums = replay->facts.sums || tally;
-    replay->facts.continuous = replay->facts.continuous || (tally && tally_wants_levels(tally));
     return STATUS_OK;
 }
 
@@ -283,17 +282,16 @@ static enum status take_levels(struct replay *replay, const struct entry *entry,
 {
     struct entry_levels *levels = &replay->levels;
     enum status status = entry_levels(entry->body, levels);
-    struct outcome outcome = {.kind = OUTCOME_EVENT, .watch_ns = watch_ns};
-    struct event *event = &outcome.as.event;
-    for (uint32_t i = 0; i < levels->n && status == STATUS_OK; i++) {
-        outcome.run = levels->run;
-        outcome.stream = levels->stream;
-        *event = (struct event){.kind = EVENT_LEVEL, .stream = levels->stream, .known_ns = watch_ns};
-        event->as.level = levels->seconds[i];
-        watch_set_range(replay->watch, event); /* of the minute's end */
-        status = tally_take(replay->tally, &outcome, &(struct outcome_sink){take_sums, replay});
-    }
-    return status != STATUS_OK ? say_problem(replay, entry, "cannot be taken again", status) : replay->status;
+    if (status != STATUS_OK)
+        return say_problem(replay, entry, "cannot be taken again", status);
+    const struct tally_minute minute = {.watch_ns = watch_ns,
+                                        .run = levels->run,
+                                        .stream = levels->stream,
+                                        .n = levels->n,
+                                        .seconds = levels->seconds};
+    status =
+        tally_take_minute(replay->tally, replay->watch, &minute, &(struct outcome_sink){take_sums, replay});
+    return status != STATUS_OK ? status : replay->status;
 }
 
 /* What the ledger holds for the tally besides the inputs of the watch. */

@@ -42,7 +42,6 @@ struct replay_facts {
     uint64_t n_inputs;
     uint32_t n_permits; /* different ones, one after the other */
     bool sums;          /* a tally says its sums */
-    bool continuous;    /* ... of continuous sound, whose seconds have no entries of their own */
     bool other_defaults;
 };
 

@@ -36,14 +36,10 @@ static bool is_sum(const char *kind)
 }
 
 /* What is in the ledger as it was derived: all but the marks of runs and the seconds of sound. */
-static bool is_compared(const struct comparing *comparing, const struct outcome *outcome)
+static bool is_compared(const struct outcome *outcome)
 {
-    if (outcome->kind == OUTCOME_EVENT)
-        return outcome->as.event.kind != EVENT_RUN && outcome->as.event.kind != EVENT_LEVEL;
-    struct replay_facts facts;
-    replay_get_facts(comparing->replay, &facts);
-    /* Of continuous sound nobody knows which of the last seconds had come when a sum was said. */
-    return !facts.continuous || !(is_sum(flow_outcome_kind_text(outcome)) || outcome->stream > 0);
+    return outcome->kind != OUTCOME_EVENT ||
+           (outcome->as.event.kind != EVENT_RUN && outcome->as.event.kind != EVENT_LEVEL);
 }
 
 static enum status take_outcome(void *context, const struct outcome *outcome)
@@ -52,7 +48,7 @@ static enum status take_outcome(void *context, const struct outcome *outcome)
     struct replay_facts facts;
     if (comparing->setup.outcome)
         comparing->setup.outcome(comparing->setup.context, outcome);
-    if (!is_compared(comparing, outcome))
+    if (!is_compared(outcome))
         return STATUS_OK;
     if (comparing->n == comparing->capacity) {
         size_t capacity = comparing->capacity ? 2 * comparing->capacity : 64;
@@ -130,18 +126,12 @@ static enum status meet_entry(void *context, const struct entry *entry, int64_t 
                               const char *permit_body)
 {
     struct comparing *comparing = context;
-    struct replay_facts facts;
     char id[FLOW_ID_SIZE] = "";
     recorder_id_of(entry->body, id);
-    replay_get_facts(comparing->replay, &facts);
     bool of_tally = is_sum(entry->kind) ||
                     (strcmp(entry->kind, "finding") == 0 && *id && strstr(id, ".0.finding.") == NULL);
     if (permit_body) {
         compare(comparing, entry, id, entry->utc, permit_body);
-        return STATUS_OK;
-    }
-    if (of_tally && facts.continuous) {
-        comparing->facts->n_not_compared++;
         return STATUS_OK;
     }
     size_t i = find(comparing, entry->kind, id);

@@ -30,9 +30,8 @@ struct rerun_facts {
     struct replay_facts replay;
     uint64_t n_different;
     uint64_t n_same, n_inputs_same;
-    uint64_t n_cut; /* follow from the last entries of a run that was not ended, and were lost with it */
-    uint64_t n_not_compared; /* sums of continuous sound */
-    uint32_t n_kinds;        /* conclusions that are the same, by kind */
+    uint64_t n_cut;   /* follow from the last entries of a run that was not ended, and were lost with it */
+    uint32_t n_kinds; /* conclusions that are the same, by kind */
     struct {
         char kind[24];
         uint64_t n;

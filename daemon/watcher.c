@@ -90,6 +90,26 @@ static void take_sums(void *context, const struct outcome *outcome)
         watch_take_finding(watcher->setup.watch, outcome, NULL);
 }
 
+/* Sums of continuous sound are made of the entries of its levels, so that they follow from the ledger. */
+static void take_minute(void *context, const struct minute_body *body)
+{
+    const struct outcome_sink sums = {take_sums, context};
+    struct watcher *watcher = context;
+    const struct tally_minute minute = {.watch_ns = body->watch_ns,
+                                        .run = body->run,
+                                        .stream = body->stream,
+                                        .n = body->n,
+                                        .seconds = body->seconds};
+    if (watcher->setup.tally && tally_wants_levels(watcher->setup.tally))
+        keep_status(watcher, tally_take_minute(watcher->setup.tally, watcher->setup.watch, &minute, &sums));
+}
+
+static bool comes_by_the_minute(const struct watcher *watcher, const struct outcome *outcome)
+{
+    return outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_LEVEL &&
+           tally_wants_levels(watcher->setup.tally);
+}
+
 static void take_outcome(void *context, const struct outcome *outcome)
 {
     const struct outcome_sink sums = {take_sums, context};
@@ -109,7 +129,7 @@ static void take_outcome(void *context, const struct outcome *outcome)
     keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
     if (watcher->setup.sound)
         keeping_take(watcher->setup.sound, outcome);
-    if (watcher->setup.tally)
+    if (watcher->setup.tally && !comes_by_the_minute(watcher, outcome))
         keep_status(watcher, tally_take(watcher->setup.tally, outcome, &sums));
 }
 
@@ -380,10 +400,10 @@ static void *run_watch(void *context)
         ;
     struct watcher_state state;
     watcher_get_state(watcher, &state);
+    keep_status(watcher, recorder_finish(watcher->setup.recorder, state.watch_ns));
     if (watcher->setup.tally)
         keep_status(watcher, tally_finish(watcher->setup.tally, state.watch_ns,
                                           &(struct outcome_sink){take_sums, watcher}));
-    keep_status(watcher, recorder_finish(watcher->setup.recorder, state.watch_ns));
     watcher->changed = true;
     publish(watcher, state.watch_ns);
     pthread_mutex_lock(&watcher->lock);
@@ -430,6 +450,7 @@ enum status watcher_start(struct watcher *watcher, const struct run_mark *mark)
 {
     struct event event = {.kind = EVENT_RUN, .counter = 1, .known_ns = mark->outage_end_ns};
     event.as.run_mark = *mark;
+    recorder_set_minutes(watcher->setup.recorder, &(struct minute_sink){take_minute, watcher});
     push(watcher, &event);
     watcher->note_counter = 0;
     if (pthread_create(&watcher->thread, NULL, run_watch, watcher) != 0)

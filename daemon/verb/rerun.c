@@ -112,11 +112,6 @@ static void print_facts(const char *path, const struct rerun_facts *facts)
                " conclusions follow from the last entries of a run and were not written any more: it did not "
                "end by itself\n",
                path, facts->n_cut);
-    if (facts->n_not_compared)
-        printf("%s: %" PRIu64
-               " sums of continuous sound are not compared: which of the last seconds had come when each was "
-               "said is not recorded\n",
-               path, facts->n_not_compared);
     if (replay->other_defaults)
         printf("%s: this program has other defaults for settings than the one that wrote the ledger\n", path);
 }

@@ -3,6 +3,7 @@
 #include "base/time.h"
 #include "record/level_body.h"
 #include <stdlib.h>
+#include <string.h>
 
 #define MINUTE_NS (60 * TIME_NS_PER_S)
 #define LATE_NS (5 * TIME_NS_PER_S)
@@ -76,7 +77,9 @@ static enum status give(struct minutes *minutes, struct channel *channel, int64_
                                  .run = minutes->run,
                                  .stream = channel->stream,
                                  .channel = channel->channel,
-                                 .counter = next_count(minutes, channel->stream)};
+                                 .counter = next_count(minutes, channel->stream),
+                                 .n = channel->n,
+                                 .seconds = channel->seconds};
     struct level_statistics hour;
     level_hour_get(&channel->hour, &hour);
     enum status status = level_body(minutes->run, channel->stream, minute.counter, channel->seconds,
@@ -148,11 +151,21 @@ static enum status take_level(struct minutes *minutes, const struct event *event
     return status;
 }
 
+/* What is summed of a job is summed from bodies: none of them goes over its begin or end. */
+static bool is_turn_of_job(const struct outcome *outcome)
+{
+    const struct note *note = &outcome->as.event.as.note;
+    return outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_NOTE && note->kind == NOTE_JOB &&
+           (strcmp(note->answer, "open") == 0 || strcmp(note->answer, "close") == 0);
+}
+
 enum status minutes_take(struct minutes *minutes, const struct outcome *outcome,
                          const struct minute_sink *sink)
 {
     if (outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_LEVEL)
         return take_level(minutes, &outcome->as.event, sink);
+    if (is_turn_of_job(outcome))
+        return minutes_flush(minutes, outcome->watch_ns, sink);
     for (uint32_t i = 0; i < minutes->n_channels; i++) {
         struct channel *channel = &minutes->channels[minutes->order[i]];
         if (channel->n > 0 &&

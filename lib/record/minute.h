@@ -1,11 +1,11 @@
 /* Gathers the level seconds of each channel into one body a minute.
  *
  * A minute's body ends at the whole minute of watch time, where a second does not follow the one before it,
- * where the bands or the mark `relative` change, and at flush. Only the order and the times of what is taken
- * decide, so the same outcomes give the same bodies. It holds the minute's statistics and those of the hour
- * of watch time that ends with it (since the run began: a restart begins an hour anew). Call order: create;
- * take every outcome of the watch in order; flush; destroy. Memory: about 150 kB a channel, all of it from
- * create. */
+ * where the bands or the mark `relative` change, where a job opens or closes, and at flush. Only the order
+ * and the times of what is taken decide, so the same outcomes give the same bodies. It holds the minute's
+ * statistics and those of the hour of watch time that ends with it (since the run began: a restart begins an
+ * hour anew). Call order: create; take every outcome of the watch in order; flush; destroy. Memory: about 150
+ * kB a channel, all of it from create. */
 #ifndef RECORD_MINUTE_H
 #define RECORD_MINUTE_H
 
@@ -19,6 +19,8 @@ struct minute_body {
     uint32_t run, stream, channel;
     uint64_t counter; /* per run and stream, from 1: a count of entries, not of seconds */
     const char *body;
+    uint32_t n; /* its seconds, oldest first; they have the range of their own time */
+    const struct level *seconds;
 };
 
 struct minute_sink {

@@ -3,6 +3,7 @@
 #include "base/time.h"
 #include "rule/tally_fill.h"
 #include "rule/tally_inner.h"
+#include "rule/watch.h"
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -321,6 +322,24 @@ void tally_say(struct tally *tally, int64_t watch_ns, const struct outcome_sink 
 {
     tally->said_minute = watch_ns / MINUTE_NS;
     say_all(tally, watch_ns, sink);
+}
+
+enum status tally_take_minute(struct tally *tally, const struct watch *watch,
+                              const struct tally_minute *minute, const struct outcome_sink *sink)
+{
+    enum status status = STATUS_OK;
+    struct outcome outcome = {
+        .kind = OUTCOME_EVENT, .watch_ns = minute->watch_ns, .run = minute->run, .stream = minute->stream};
+    struct event *event = &outcome.as.event;
+    for (uint32_t i = 0; i < minute->n && status == STATUS_OK; i++) {
+        *event = (struct event){.kind = EVENT_LEVEL, .stream = minute->stream, .known_ns = minute->watch_ns};
+        event->as.level = minute->seconds[i];
+        event->as.level.range_from = RANGE_UNSET;
+        watch_set_range(watch, event);
+        status = tally_take(tally, &outcome, sink);
+    }
+    tally_say(tally, minute->watch_ns, sink);
+    return status;
 }
 
 enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink)

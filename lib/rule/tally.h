@@ -50,7 +50,15 @@ struct tally_setup {
     double inner_m;                      /* of together_setup; read where there are others */
 };
 
+/* The level seconds of one channel, oldest first; borrowed. */
+struct tally_minute {
+    int64_t watch_ns;
+    uint32_t run, stream, n;
+    const struct level *seconds;
+};
+
 struct tally;
+struct watch;
 
 /* Allocates all of it now: 42 MiB a stream, of which 20 are resident from the start and the rest, the
  * impulses that are kept so that they can be counted again, as a job comes to have them, up to 131,072
@@ -70,6 +78,10 @@ enum status tally_finish(struct tally *tally, int64_t watch_ns, const struct out
 void tally_set_silent(struct tally *tally, bool silent);
 void tally_set_said(struct tally *tally, const struct outcome *finding);
 bool tally_wants_levels(const struct tally *tally);
+/* Of continuous sound takes a minute's entry of levels (record/minute.h) at its time and says what it adds:
+ * so the sums are those of the entries before them. Each second takes the range that the watch knows then. */
+enum status tally_take_minute(struct tally *tally, const struct watch *watch,
+                              const struct tally_minute *minute, const struct outcome_sink *sink);
 /* Says now what was added since it was last said: when that was is known from a ledger alone, for what comes
  * first in a minute is often a second of sound, which has no entry of its own. */
 void tally_say(struct tally *tally, int64_t watch_ns, const struct outcome_sink *sink);

@@ -16,7 +16,7 @@ import scipy.signal
 import scipy.stats
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
-from watch import LENGTH, ROOT, ask, check, figure, finish, folder, scan, settings  # noqa: E402
+from watch import LENGTH, ROOT, ask, check, derive_again, figure, finish, folder, scan, settings  # noqa: E402
 
 MINUTES = {"short": 2, "check": 10, "long": 30}[LENGTH]
 SEEDS = {"short": 2, "check": 10, "long": 40}[LENGTH]
@@ -71,6 +71,7 @@ def main(place):
             calls[name] = calls.get(name, 0) + n
         acts += len(ask(ledger, "SELECT DISTINCT contact FROM contact WHERE grade = 'act'"))
         looks += len(ask(ledger, "SELECT DISTINCT contact FROM contact WHERE grade = 'look'"))
+        derive_again(place)
         os.remove(ledger)
     figure("noise, %.2f h, seeds %d to %d: calls %s, look %d, act %d" %
            (hours, first_seed, first_seed + SEEDS - 1, calls or "none", looks, acts))

@@ -6,20 +6,19 @@ import os
 import sqlite3
 import subprocess
 import sys
-import tempfile
 
 import numpy as np
 
+sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
+from watch import check as judge, finish, folder as folder_of_test  # noqa: E402
+
 TOOL = os.path.join(os.environ.get("HUSHWATCH_BUILD", "build"), "hushwatch")
 SCENE = os.path.abspath("config/scenes/demonstration.cfg")
-count, failed = 0, 0
 
 
 def check(name, good, detail):
-    global count, failed
-    count += 1
-    failed += not good
-    print("# figure %s\n%s %d - %s" % (detail, "ok" if good else "not ok", count, name), flush=True)
+    print("# figure " + detail)
+    judge(name, good)
 
 
 SITE = """name = "demonstration"; ledger = "unused.ledger"; permit = "%s"; calls = "%s";
@@ -28,7 +27,7 @@ streams = ( { input = "scene"; path = "%s"; pace = "fast"; channels = (
   { role = "measure"; sensitivity_db = -170.0; gain_db = 0.0; full_scale_v = 10.0; } ); } );
 """
 
-with tempfile.TemporaryDirectory(prefix="hushwatch-truth-") as folder:
+with folder_of_test() as folder:
     site, ledger = os.path.join(folder, "site.cfg"), os.path.join(folder, "out.ledger")
     wav, out = os.path.join(folder, "out.wav"), os.path.join(folder, "out.json")
     with open(site, "w") as file:
@@ -64,5 +63,4 @@ real = [any(min(e, h["end_s"]) - max(s, h["start_s"]) > 0 for h in heard) for s,
 check("nine of ten calls are heard", np.mean(found) >= 0.9, "%d of %d calls heard" % (sum(found), len(found)))
 check("what is heard as a call is one", len(calls) > 0 and np.mean(real) >= 0.95, "%d of %d found calls lie on true ones" % (
     sum(real), len(real)))
-print("1..%d" % count)
-sys.exit(1 if failed else 0)
+finish()

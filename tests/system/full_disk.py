@@ -7,7 +7,7 @@ import sys
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
 from daemon import Daemon  # noqa: E402
-from watch import ask, check, figure, finish, folder, settings, verify  # noqa: E402
+from watch import ask, check, derive_again, figure, finish, folder, settings, verify  # noqa: E402
 
 SCENE = """seed = 9; duration_s = 300.0; rate_hz = 48000.0;
 sea = { temperature_c = 11.0; salinity = 34.0; depth_m = 20.0; wind_m_s = 3.0; shipping = 0.2; };
@@ -60,6 +60,7 @@ def live(place, disk):
                                         "SELECT 1 FROM entry WHERE kind = 'health' AND body LIKE '%disk%'"))
     done = verify(disk + "/watch.ledger")
     check("the ledger verifies", done.returncode == 0, done.stdout)
+    derive_again(disk)  # before the disk goes
 
 
 with folder() as place_of_test:

@@ -100,6 +100,32 @@ def any_change(ledger):
             "1.0.finding.77: does not follow", '{"id":"1.0.finding.77"}')
 
 
+def escaped(text):
+    return json.dumps(text)[1:-1].replace("\\n", "\\u000a")
+
+
+def every_timer(ledger):
+    """Each time that the permit's text names, made 2 % longer, whether anything of this day depends on it or not."""
+    permit = one(ledger, "SELECT seq FROM permit")
+    text = one(ledger, "SELECT json_extract(body, '$.text') FROM entry WHERE seq = %d" % permit)
+    timers = list(re.finditer(r"(\w*minutes|\w*_s) = \{ value = ([\d.]+);", text))
+    check("the permit has its timers", len(timers) == 6, timers)
+    for timer in timers:
+        before, after = text[timer.start() - 40:timer.start(2)], text[timer.end(2):timer.end() + 5]
+        altered(ledger, "%s of %s, 2 %% longer," % (timer.group(1), timer.group(2)),
+                "UPDATE entry SET body = replace(body, ?, ?) WHERE seq = %d" % permit, "entry %d, permit" % permit,
+                escaped(before + timer.group(2) + after), escaped(before + "%.3f" % (float(timer.group(2)) * 1.02) + after))
+    # One that an instruction waits for: until a minute after its end.
+    call = one(ledger, "SELECT c.seq FROM call AS c, advice AS a WHERE abs((julianday(a.until) - julianday('2026-03-01T12:00:00Z')) * "
+                       "86400 - c.end_s - 60) < 0.01 ORDER BY c.seq LIMIT 1")
+    end_s = one(ledger, "SELECT json_extract(body, '$.end_s') FROM entry WHERE seq = %d" % call)
+    altered(ledger, "the end of a call, half a second", "UPDATE entry SET body = replace(body, ?, ?) WHERE seq = %d" % call,
+            "contact|advice", '"end_s":%.6f' % end_s, '"end_s":%.6f' % (end_s - 0.5))
+    group = one(ledger, "SELECT json_extract(body, '$.group') FROM entry WHERE seq = %d" % call)
+    altered(ledger, "a call of another group", "UPDATE entry SET body = replace(body, ?, ?) WHERE seq = %d" % call, "contact",
+            '"group":"%s"' % group, '"group":"%s"' % ("sperm whale" if group != "sperm whale" else "porpoise"))
+
+
 def seconds_told(ledger, word):
     """(number, seconds) of a word in force for the crew, by sqlite alone."""
     return ask(ledger, "SELECT count(*), coalesce(sum(until - at), 0) FROM (SELECT advice, at, lead(at, 1, last) OVER (ORDER BY at, seq) "
@@ -226,6 +252,56 @@ def a_new_permit(place):
     check("the ledger verifies", verify(ledger).returncode == 0)
 
 
+SHIP = """seed = 6; duration_s = 60.0; rate_hz = 24000.0;
+sea = { temperature_c = 11.0; salinity = 34.0; depth_m = 20.0; wind_m_s = 3.0; shipping = 0.2; };
+hydrophones = ( { x_m = 0.0; y_m = 750.0; z_m = 10.0; sensitivity_db = -170.0; gain_db = 0.0; full_scale_v = 10.0; } );
+ships = ( { x_m = 0.0; y_m = 0.0; z_m = 10.0; course_deg = 0.0; speed_m_s = 0.0; lines_hz = [ 200.0 ]; source_level_db = 190.0; } );
+notes = ( { at_s = 0.5; kind = "sign-on"; person = "A. Eyes"; watch = "visual"; },
+          { at_s = 0.6; kind = "sign-on"; person = "B. Ears"; watch = "acoustic"; },
+          { at_s = 0.8; kind = "job"; person = "C. Crew"; job = "hole 1"; answer = "open"; },
+          { at_s = 2.5; kind = "source state"; person = "C. Crew"; source_state = "vibro"; } );
+"""
+
+
+def continuous_sound(place):
+    """Drilling, with a kill between two jobs and a restart in the second: its sums follow from the seconds in the ledger."""
+    os.makedirs(place)
+    with open(place + "/scene.cfg", "w") as file:
+        file.write(SHIP)
+    config = settings(place + "/site.cfg", permit="tests/system/seconds-permit.cfg",
+                      channels='{ role = "measure"; sensitivity_db = -170.0; full_scale_v = 10.0; place_m = [0.0, 750.0, 10.0]; }',
+                      stream='input = "scene"; path = "scene.cfg"; pace = "real";',
+                      more='pages = { port = 0; }; source = { sound = "continuous"; criteria = ["%s/config/criteria/behaviour-us.cfg"]; };'
+                      % ROOT)
+    ledger = place + "/watch.ledger"
+    daemon = Daemon(config)
+    with daemon:
+        daemon.wait_for(lambda s: s["watch_s"] > 7, 20)
+        daemon.note(kind="job", person="C. Crew", job="hole 1", answer="close")
+        daemon.note(kind="job", person="C. Crew", job="hole 2", answer="open")
+        daemon.wait_for(lambda s: s["watch_s"] > 10, 20)
+        daemon.kill()
+        daemon.start()
+        daemon.wait_for(lambda s: s["watch_s"] > 16, 30)
+        daemon.note(kind="job", person="C. Crew", job="hole 2", answer="close")
+        daemon.terminate()
+    done = rerun(ledger)
+    sums = ask(ledger, "SELECT job, max(n) FROM exposure GROUP BY job ORDER BY job")
+    seconds = one(ledger, "SELECT count(*) FROM level WHERE start_s >= 2")
+    check("both jobs of continuous sound have sums, of the seconds that the ledger holds", [row[0] for row in sums if row[0]] ==
+          ["hole 1", "hole 2"] and sum(row[1] for row in sums if row[0]) <= seconds and all(row[1] > 1 for row in sums if row[0]),
+          (sums, seconds))
+    said = re.search(r"the same:.* (\d+) exposure", done.stdout.replace("\n", " "))
+    check("sums of continuous sound are the same, over a kill", done.returncode == 0 and "2 runs" in done.stdout and said and
+          int(said.group(1)) == one(ledger, "SELECT count(*) FROM exposure"), done.stdout + done.stderr)
+    level = one(ledger, "SELECT max(seq) FROM entry WHERE kind = 'level' AND seq < (SELECT min(seq) FROM entry WHERE "
+                        "json_extract(body, '$.job') = 'hole 1' AND json_extract(body, '$.answer') = 'close')")
+    spl = one(ledger, "SELECT max(spl_db) FROM level WHERE seq = %d" % level)
+    altered(ledger, "a second's level, 0.5 dB", "UPDATE entry SET body = replace(body, ?, ?) WHERE seq = %d" % level, "exposure",
+            "%.2f" % spl, "%.2f" % (spl + 0.5))
+    altered(ledger, "a minute of levels that was taken out", "DELETE FROM entry WHERE seq = %d" % level, "exposure")
+
+
 def wrong_use(place, ledger):
     with open(place + "/not.txt", "w") as file:
         file.write("no ledger")
@@ -241,8 +317,10 @@ with folder() as place_of_test:
     if check("the demonstration is scanned", scanned.returncode == 0, scanned.stderr):
         the_same(demonstration)
         any_change(demonstration)
+        every_timer(demonstration)
         another_permit(demonstration, place_of_test)
         the_chain(demonstration)
         wrong_use(place_of_test, demonstration)
     a_new_permit(place_of_test)
+    continuous_sound(place_of_test + "/drilling")
 finish()
