@@ -87,6 +87,8 @@ static void read_soft_start(struct permit_reader *reader, struct group_reader *r
     read_bursts(reader, &group, soft);
     value_flag(reader, &group, "stop_if_possible_else_hold", READER_OPTIONAL,
                &soft->stop_if_possible_else_hold);
+    value_flag(reader, &group, "equal_stages", READER_OPTIONAL, &soft->equal_stages);
+    value_flag(reader, &group, "smallest_charge_first", READER_OPTIONAL, &soft->smallest_charge_first);
     group_string(&group, "clause", READER_REQUIRED, soft->clause, sizeof soft->clause);
     group_done(&group);
 }

@@ -15,10 +15,35 @@ static void take_note(struct watch *watch, const struct note *note)
     struct charge_state *state = &watch->charge;
     if (note->kind != NOTE_JOB || strcmp(note->answer, "open") != 0)
         return;
-    *state = (struct charge_state){.due_ns = -1, .peak_db = NAN, .range_m = NAN};
+    *state =
+        (struct charge_state){.due_ns = -1, .peak_db = NAN, .range_m = NAN, .largest_kg = state->largest_kg};
     state->charge_kg = note->charge_kg;
     state->donor_kg = note->donor_kg;
     memcpy(state->id, watch->recent.causes[0], sizeof state->id);
+}
+
+static void find_larger_first(struct watch *watch)
+{
+    const struct permit_soft_start *rule = &watch->permit->soft_start;
+    struct charge_state *state = &watch->charge;
+    struct why why;
+    if (rule->smallest_charge_first && state->charge_kg < state->largest_kg) {
+        why_reset(&why, rule->clause, "%g kg after %g kg: the smallest charge is to go first",
+                  state->charge_kg, state->largest_kg);
+        why_add_cause(&why, state->impulse_id);
+        why_add_cause(&why, state->id);
+        watch_say_finding(watch, "larger charge first", "firm", &why);
+    }
+    if (state->charge_kg > state->largest_kg)
+        state->largest_kg = state->charge_kg;
+}
+
+/* Another pre-watch is another series of charges. */
+static void enter_phase(struct watch *watch, enum phase from, enum phase to)
+{
+    (void)from;
+    if (to == PHASE_PRE_WATCH || to == PHASE_OFF)
+        watch->charge.largest_kg = 0;
 }
 
 static void take_impulse(struct watch *watch, const struct event *event)
@@ -30,6 +55,7 @@ static void take_impulse(struct watch *watch, const struct event *event)
     if (state->due_ns < 0) {
         state->due_ns = watch->now_ns + JUDGED_AFTER_NS;
         memcpy(state->impulse_id, watch->source.impulse_id, sizeof state->impulse_id);
+        find_larger_first(watch);
     }
     if (impulse->relative || impulse->refused || !isfinite(impulse->peak_db) ||
         impulse->peak_db <= state->peak_db)
@@ -73,5 +99,8 @@ static void settle(struct watch *watch)
     watch_say_finding(watch, "order of the charge", "indicative", &why);
 }
 
-const struct condition condition_charge = {
-    .take_note = take_note, .take_impulse = take_impulse, .due_ns = due_ns, .settle = settle};
+const struct condition condition_charge = {.take_note = take_note,
+                                           .take_impulse = take_impulse,
+                                           .enter_phase = enter_phase,
+                                           .due_ns = due_ns,
+                                           .settle = settle};

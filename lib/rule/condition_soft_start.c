@@ -8,6 +8,8 @@
 
 /* Levels of single impulses scatter by a few decibels (common practice, no source): steps and rises are
  * looked for in medians, and must be this clear. */
+/* 'About equal': the longest stage is at most twice the shortest (own choice). */
+#define EQUAL_RATIO 2
 #define CLEAR_DB 1.5
 
 static void say(struct watch *watch, const char *code, const char *format, double is, double allowed)
@@ -29,6 +31,18 @@ static double median_from(const struct rise *rise, uint32_t first, uint32_t n)
     return median_of(copy, n);
 }
 
+/* A stage is over. */
+static void end_stage(struct watch *watch)
+{
+    struct rise *rise = &watch->rise;
+    int64_t lasted_ns = watch->now_ns - rise->stage_ns;
+    rise->stage_ns = watch->now_ns;
+    if (rise->n_stages == 0)
+        return;
+    rise->shortest_ns = rise->n_stages == 1 || lasted_ns < rise->shortest_ns ? lasted_ns : rise->shortest_ns;
+    rise->longest_ns = rise->n_stages == 1 || lasted_ns > rise->longest_ns ? lasted_ns : rise->longest_ns;
+}
+
 /* One number that the crew enters: energy in kilojoules, or active elements. */
 static void take_stage(struct watch *watch, double number, double planned)
 {
@@ -42,6 +56,7 @@ static void take_stage(struct watch *watch, double number, double planned)
     if (rise->n_stages > 0 && rule->step == STEP_DOUBLING && number > 2 * rise->number)
         say(watch, "step too large", "%g active elements after %g; at most twice as many", number,
             rise->number);
+    end_stage(watch);
     rise->n_stages++;
     rise->number = number;
 }
@@ -105,6 +120,10 @@ static void judge(struct watch *watch)
     if (rise->n_stages > 0 && rise->n_stages < rule->least_stages)
         say(watch, "soft start with too few stages", "%g stages; at least %g", rise->n_stages,
             rule->least_stages);
+    end_stage(watch);
+    if (rule->equal_stages && rise->n_stages > 1 && rise->longest_ns > EQUAL_RATIO * rise->shortest_ns)
+        say(watch, "stages not of equal length", "the longest stage lasted %.1f min, the shortest %.1f",
+            time_to_s(rise->longest_ns) / 60, time_to_s(rise->shortest_ns) / 60);
     if (rule->bursts > 0 && rise->last_ns >= 0 && rise->n_bursts + 1 < rule->bursts)
         say(watch, "soft start with too few bursts", "%g bursts are heard; at least %g", rise->n_bursts + 1,
             rule->bursts);

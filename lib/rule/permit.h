@@ -130,6 +130,8 @@ struct permit_soft_start {
                         for the soft start */
     double burst_s, pause_s;
     bool stop_if_possible_else_hold; /* 'stop if possible, otherwise do not increase' */
+    bool equal_stages;               /* its stages are of about equal length */
+    bool smallest_charge_first;      /* of several charges */
     char clause[PERMIT_TEXT_SIZE];
 };
 

@@ -185,6 +185,7 @@ struct charge_state {
     int64_t due_ns;             /* when it is judged; -1: it has not gone off */
     bool judged, clipped;
     double peak_db, range_m; /* of its loudest blow */
+    double largest_kg;       /* that has gone off since the last pre-watch; 0 */
     char id[FLOW_ID_SIZE], impulse_id[FLOW_ID_SIZE];
 };
 
@@ -218,6 +219,7 @@ struct rise {
     bool on, said_step;
     double planned_kj, number; /* number: of the present stage, NAN before the first */
     uint32_t n_stages, n_bursts, n_first, n_levels;
+    int64_t stage_ns, shortest_ns, longest_ns;           /* the present stage's begin; the stages before it */
     int64_t last_ns;                                     /* the newest impulse; -1 */
     double first_db[RISE_LEVELS], level_db[RISE_LEVELS]; /* the first; the newest, a ring */
 };
