@@ -9,7 +9,8 @@ static const struct {
     const char *kind, *sentence;
 } words[] = {
     {"run", "a run begins ({command}), nothing was heard from {outage_start_s%.1f} to {outage_end_s%.1f} s"},
-    {"permit", "permit {permit}: {title}"},
+    {"permit",
+     "permit {permit}: {title}[, {document}][, {revision}][, {year}][, ended {ended}][, SHA-256 {sha256}]"},
     {"note", "note: {note}[ by {person}][, {watch} watch][ at {station}][: {source_state}][: {answer}]"
              "[: {verdict}][, contact {contact}][, {group}][, job {job}][, at {distance_m%.0f} m]"
              "[, about {advice}][, about {impulse}][, \"{text}\"]"},
@@ -32,6 +33,7 @@ static const struct {
     {"source", "the source as heard: {model}[, job {job}][, SEL {sel_db%.1f} dB][, SPL {spl_db%.1f} dB]"},
     {"position", "position of the {whose}: {latitude_deg%.6f}, {longitude_deg%.6f}"},
     {"health", "{health}"},
+    {"sound", "sound kept: {reason}, stream {stream}, channel {channel}, {start_s%.1f} to {end_s%.1f} s"},
 };
 
 static void append_key(const char **at, bool required, struct text *sql)

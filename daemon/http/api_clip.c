@@ -1,4 +1,5 @@
-/* A sound that was kept, as its file has it: only where the file is there and is the one of the ledger. */
+/* Whether the file of a sound that was kept is there, and is the one of the ledger. Heard is it by /clip/ID.
+ */
 #include "http/board_json.h"
 #include "http/request.h"
 #include "http/routes.h"
@@ -64,36 +65,17 @@ static enum status ask(struct ledger *ledger, struct question *question)
     int fd = open(path, O_RDONLY | O_CLOEXEC | O_NOFOLLOW | O_NONBLOCK);
     if (fd < 0)
         return STATUS_END;
-    if (fstat(fd, &facts) != 0 || !S_ISREG(facts.st_mode) || !has_digest(fd, clip.sha256)) {
-        close(fd);
-        return STATUS_MISMATCH;
-    }
-    review->file = fd;
-    review->file_size = (uint64_t)facts.st_size;
-    return STATUS_OK;
-}
-
-static enum MHD_Result give_file(struct request *request)
-{
-    struct review *review = &request->review;
-    struct MHD_Response *response = MHD_create_response_from_fd64(review->file_size, review->file);
-    if (!response)
-        return MHD_NO;
-    review->file = -1; /* the response's now */
-    http_add_headers(response);
-    MHD_add_response_header(response, "Content-Type", "audio/flac");
-    enum MHD_Result result = MHD_queue_response(request->connection, MHD_HTTP_OK, response);
-    MHD_destroy_response(response);
-    return result;
+    bool same = fstat(fd, &facts) == 0 && S_ISREG(facts.st_mode) && has_digest(fd, clip.sha256);
+    close(fd);
+    text_append(&question->text, "{");
+    json_text(&question->text, "sha256", clip.sha256);
+    text_append(&question->text, "}\n");
+    return same ? STATUS_OK : STATUS_MISMATCH;
 }
 
 enum MHD_Result api_clip(struct request *request)
 {
-    if (!request->submitted || request->review.question.status == STATUS_NOT_FOUND)
-        return review_put(request, ask);
-    switch (request->review.question.status) {
-    case STATUS_OK:
-        return give_file(request);
+    switch (request->submitted ? request->review.question.status : STATUS_OK) {
     case STATUS_END:
         return http_refuse(request->connection, MHD_HTTP_NOT_FOUND, "the file is not there", NULL, NULL);
     case STATUS_MISMATCH:

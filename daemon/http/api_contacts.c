@@ -5,6 +5,7 @@
 #include "http/request.h"
 #include "http/routes.h"
 #include <inttypes.h>
+#include <jansson.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -32,6 +33,7 @@ static const char contacts_sql[] =
 
 struct page {
     struct text *text;
+    const char *group; /* "": any */
     uint32_t n, limit;
     double last;
     bool more;
@@ -47,11 +49,37 @@ static void add_text(struct text *text, const char *name, const char *value)
     json_text(text, name, value ? value : "");
 }
 
+static void words_json(struct text *text, const char *const *columns)
+{
+    struct text words = {0};
+    json_t *verdict = columns[11] ? json_loads(columns[11], 0, NULL) : NULL;
+    const char *person = json_string_value(json_object_get(verdict, "person"));
+    const char *why = json_string_value(json_object_get(verdict, "text"));
+    const char *known[9];
+    for (int i = 0; i < 9; i++)
+        known[i] = columns[i] ? columns[i] : "?";
+    text_format(&words, "contact %s, %s, %s, %s, %.10s %.8s to %.8s, %s calls, ", known[0], known[6],
+                *known[3] ? known[3] : "no grade", known[7], known[1],
+                strlen(known[1]) > 19 ? known[1] + 11 : "", strlen(known[2]) > 19 ? known[2] + 11 : known[2],
+                known[4]);
+    if (columns[8] && columns[10])
+        text_format(&words, "%.0f to %.0f m", strtod(columns[8], NULL), strtod(columns[10], NULL));
+    else
+        text_append(&words, "range unknown");
+    if (verdict)
+        text_format(&words, "; %s: %s", person ? person : "?", why ? why : "no reason");
+    json_text(text, "words", words.failed ? "" : words.data);
+    text_destroy(&words);
+    json_decref(verdict);
+}
+
 static enum status take_contact(void *context, int n, const char *const *columns)
 {
     struct page *page = context;
     struct text *text = page->text;
     (void)n;
+    if (*page->group && (!columns[6] || strcmp(columns[6], page->group) != 0))
+        return STATUS_OK;
     if (page->n == page->limit) {
         page->more = true;
         return STATUS_END;
@@ -71,6 +99,7 @@ static enum status take_contact(void *context, int n, const char *const *columns
     add_number(text, "distance_p05_m", columns[8], 1);
     add_number(text, "distance_p50_m", columns[9], 1);
     add_number(text, "distance_p95_m", columns[10], 1);
+    words_json(text, columns);
     json_name(text, "verdict");
     if (columns[11])
         review_body(text, columns[11]);
@@ -85,7 +114,7 @@ static enum status take_contact(void *context, int n, const char *const *columns
 static enum status ask(struct ledger *ledger, struct question *question)
 {
     const struct review *review = (struct review *)question;
-    struct page page = {.text = &question->text, .limit = (uint32_t)review->limit};
+    struct page page = {.text = &question->text, .group = review->group, .limit = (uint32_t)review->limit};
     char after[24], last_text[24], from[TIME_UTC_SIZE];
     const char *parameters[] = {last_text, after, from, review->dismissed ? "1" : "0"};
     int64_t first, last;

@@ -1,5 +1,6 @@
 /* Entries of some kinds and a span of time, a page at a time. */
 #include "base/text.h"
+#include "explanation_words.h"
 #include "http/board_json.h"
 #include "http/request.h"
 #include "http/routes.h"
@@ -41,34 +42,41 @@ static enum status take_entry(void *context, int n, const char *const *columns)
     json_number(page->text, "seq", (double)page->last_seq, 0);
     json_text(page->text, "utc", columns[1]);
     json_text(page->text, "kind", columns[2]);
+    json_text(page->text, "words", columns[4] ? columns[4] : body);
     json_name(page->text, "body");
     review_body(page->text, body);
     text_append(page->text, "}");
     return STATUS_OK;
 }
 
-/* One SELECT a kind, each in the order of seq, so that no kind is read whole to be sorted. */
+/* Entries of a kind in the order of seq, with what they say in words. */
+static void add_select(const char *kind, const char *where, const char *order, int limit, struct text *sql)
+{
+    text_format(sql, "SELECT * FROM (SELECT seq, utc, kind, body, CASE WHEN json_valid(body) THEN ");
+    explanation_words(kind, sql);
+    text_format(sql, " END FROM entry WHERE kind = '%s' AND %s ORDER BY seq%s LIMIT %d)", kind, where, order,
+                limit);
+}
+
+/* One SELECT a kind, so that no kind is read whole to be sorted. */
 static enum status make_sql(const struct review *review, int64_t first, int64_t last, struct text *sql)
 {
-    char kinds[REVIEW_WORD_SIZE], *rest = kinds;
+    char kinds[REVIEW_WORD_SIZE], where[96], before[64], *rest = kinds;
     const char *kind;
     unsigned n = 0;
     snprintf(kinds, sizeof kinds, "%s", review->kind);
+    snprintf(where, sizeof where, "seq BETWEEN %" PRId64 " AND %" PRId64, first, last);
+    snprintf(before, sizeof before, "seq < %" PRId64, first);
     while ((kind = strsep(&rest, ","))) {
-        if (!views_has_kind(kind) || ++n > MAX_KINDS)
+        if ((!views_has_kind(kind) && strcmp(kind, "sound") != 0) || ++n > MAX_KINDS)
             return STATUS_BAD_ARGUMENT;
-        text_format(
-            sql,
-            "%sSELECT * FROM (SELECT seq, utc, kind, body FROM entry WHERE kind = '%s' AND seq BETWEEN "
-            "%" PRId64 " AND %" PRId64 " ORDER BY seq LIMIT %d)",
-            n > 1 ? " UNION ALL " : "", kind, first, last,
-            *review->job || *review->words ? MAX_LOOKED + 1 : (int)review->limit + 1);
-        if (review->lead && review->after < 1)
-            text_format(
-                sql,
-                " UNION ALL SELECT * FROM (SELECT seq, utc, kind, body FROM entry WHERE kind = '%s' AND "
-                "seq < %" PRId64 " ORDER BY seq DESC LIMIT 1)",
-                kind, first);
+        text_append(sql, n > 1 ? " UNION ALL " : "");
+        add_select(kind, where, "", *review->job || *review->words ? MAX_LOOKED + 1 : (int)review->limit + 1,
+                   sql);
+        if (review->lead && review->after < 1) {
+            text_append(sql, " UNION ALL ");
+            add_select(kind, before, " DESC", 1, sql);
+        }
     }
     text_append(sql, " ORDER BY seq");
     return sql->failed ? STATUS_NO_MEMORY : STATUS_OK;

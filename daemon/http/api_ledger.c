@@ -19,6 +19,35 @@ static void faults_json(struct text *text, const struct checker_view *view)
     text_append(text, "]");
 }
 
+/* The state in a sentence or two for people. */
+static void words_json(struct text *text, const struct checker_view *view)
+{
+    struct text words = {0};
+    char utc[TIME_UTC_SIZE];
+    long long n = (long long)view->facts.n_entries;
+    time_format_utc(view->checked_unix_ns, utc);
+    if (view->state == CHECKER_CHECKING)
+        text_format(&words, "CHECKING THE LEDGER: %lld entries so far.", n);
+    else if (view->state == CHECKER_UNREADABLE)
+        text_format(&words, "THE LEDGER CANNOT BE READ. %s", view->problem);
+    else if (view->state == CHECKER_GOOD)
+        text_format(
+            &words,
+            "LEDGER GOOD: entries 1 to %lld are as they were written. Checked %.10s %.8s UTC. Last hash, "
+            "to compare with one noted elsewhere: %s",
+            n, utc, utc + 11, view->facts.last_hash);
+    else
+        text_format(&words, "THE LEDGER IS NOT AS IT WAS WRITTEN: %llu faults.",
+                    (unsigned long long)view->facts.n_faults);
+    for (uint32_t i = 0; i < view->n_faults && i < 3; i++) {
+        if (view->faults[i].seq > 0)
+            text_format(&words, " Entry %lld:", (long long)view->faults[i].seq);
+        text_format(&words, " %s.", view->faults[i].sentence);
+    }
+    json_text(text, "words", words.failed ? "THE LEDGER'S STATE IS NOT KNOWN" : words.data);
+    text_destroy(&words);
+}
+
 enum MHD_Result api_ledger(struct request *request)
 {
     static const char *const words[] = {"checking", "good", "faults", "unreadable"};
@@ -41,6 +70,7 @@ enum MHD_Result api_ledger(struct request *request)
     json_text(&text, "last_hash", view.facts.last_hash);
     json_number(&text, "checked_unix_s", (double)view.checked_unix_ns / 1e9, 0);
     faults_json(&text, &view);
+    words_json(&text, &view);
     text_append(&text, "}\n");
     enum MHD_Result result = text.failed ? MHD_NO
                                          : http_answer(request->connection, MHD_HTTP_OK, "application/json",

@@ -63,6 +63,7 @@ static uint32_t draw(struct population *population, uint32_t n, uint64_t seed)
 
 struct sounds {
     struct text *text;
+    struct text words; /* of one contact: when and where to listen */
     struct review_zeros zeros;
 };
 
@@ -74,6 +75,10 @@ static enum status take_sound(void *context, int n, const char *const *columns)
     for (int i = 0; i < 5 && i < n; i++)
         numbers[i] = columns[i] ? strtod(columns[i], NULL) : 0;
     double zero_s = review_zero(&sounds->zeros, (int64_t)numbers[0]);
+    char utc[TIME_UTC_SIZE];
+    time_format_utc((int64_t)llround((zero_s + numbers[3]) * 1e6) * TIME_NS_PER_US, utc);
+    text_format(&sounds->words, "%.10s %.12s, %.1f s, channel %.0f.%.0f. ", utc, utc + 11,
+                numbers[4] - numbers[3], numbers[1], numbers[2]);
     json_next(text);
     text_append(text, "{");
     json_number(text, "stream", numbers[1], 0);
@@ -127,6 +132,8 @@ static enum status ask_with(struct ledger *ledger, struct question *question, st
         text_append(text, "[");
         status = ledger_select(ledger, sounds_sql, 3, parameters, take_sound, sounds);
         text_append(text, "]");
+        json_text(text, "words", sounds->words.data && !sounds->words.failed ? sounds->words.data : "");
+        text_reset(&sounds->words);
         json_name(text, "clips");
         text_append(text, "[");
         if (status == STATUS_OK)
@@ -143,6 +150,7 @@ static enum status ask(struct ledger *ledger, struct question *question)
     struct sounds sounds = {.text = &question->text};
     enum status status = population ? ask_with(ledger, question, population, &sounds) : STATUS_NO_MEMORY;
     review_zeros_destroy(&sounds.zeros);
+    text_destroy(&sounds.words);
     free(population);
     return status;
 }

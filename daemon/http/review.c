@@ -9,7 +9,6 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
-#include <unistd.h>
 
 /* ---- from the request */
 
@@ -28,10 +27,9 @@ static const struct {
 static const struct {
     const char *name;
     size_t offset;
-} texts[] = {{"kind", offsetof(struct review, kind)},
-             {"id", offsetof(struct review, id)},
-             {"job", offsetof(struct review, job)},
-             {"words", offsetof(struct review, words)}};
+} texts[] = {{"kind", offsetof(struct review, kind)}, {"id", offsetof(struct review, id)},
+             {"job", offsetof(struct review, job)},   {"group", offsetof(struct review, group)},
+             {"row", offsetof(struct review, row)},   {"words", offsetof(struct review, words)}};
 
 static const char *argument(struct MHD_Connection *connection, const char *name)
 {
@@ -70,15 +68,11 @@ static const char *read_review(struct MHD_Connection *connection, struct review 
 void review_reset(struct review *review)
 {
     memset(review, 0, sizeof *review);
-    review->file = -1;
 }
 
 void review_end(struct review *review)
 {
     text_destroy(&review->question.text);
-    if (review->file >= 0)
-        close(review->file);
-    review->file = -1;
 }
 
 static void resume(struct question *question)

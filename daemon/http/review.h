@@ -36,6 +36,8 @@ struct review {
     char kind[REVIEW_WORD_SIZE];  /* "" */
     char id[REVIEW_WORD_SIZE];    /* "" */
     char job[REVIEW_WORD_SIZE];   /* "" */
+    char group[REVIEW_WORD_SIZE]; /* "" */
+    char row[REVIEW_WORD_SIZE];   /* "" */
     char words[REVIEW_WORD_SIZE]; /* "" */
     double from_s, to_s;          /* UTC in seconds since 1970; 0 and 9e9 */
     double after;                 /* a seq or a contact's number; 0 */
@@ -45,8 +47,6 @@ struct review {
     double seed;                  /* 1 */
     bool lead, dismissed;
     const char *clips; /* the folder of the sounds kept */
-    int file;          /* of an answer that is a file: open, else -1; and its size */
-    uint64_t file_size;
 };
 
 /* Puts nothing into it yet. */

@@ -20,6 +20,7 @@
 #define HTTP_LEDGER_ROUTES(ROUTE)                                                                            \
     ROUTE("GET", "/api/ledger", api_ledger)                                                                  \
     ROUTE("GET", "/api/entries", api_entries)                                                                \
+    ROUTE("GET", "/api/survey", api_survey)                                                                  \
     ROUTE("GET", "/api/timeline", api_timeline)                                                              \
     ROUTE("GET", "/api/explain", api_explain)                                                                \
     ROUTE("GET", "/api/contacts", api_contacts)                                                              \
