@@ -272,7 +272,7 @@ static void read_sound(struct group_reader *root, struct site *site)
     read_path(&group, site->folder, "folder", READER_OPTIONAL, sound->folder);
     group_number(&group, "minutes", READER_OPTIONAL, 0, 1440, &sound->minutes);
     group_number(&group, "most_mib", READER_OPTIONAL, 1, 1e7, &sound->most_mib);
-    group_number(&group, "leave_mib", READER_OPTIONAL, 0, 1e6, &sound->leave_mib);
+    group_number(&group, "leave_mib", READER_OPTIONAL, 1, 1e6, &sound->leave_mib);
     group_number(&group, "around_s", READER_OPTIONAL, 0, 20, &sound->around_s);
     group_done(&group);
 }

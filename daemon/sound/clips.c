@@ -14,6 +14,7 @@
 #define STEP_NS (TIME_NS_PER_S / 5)
 #define AGAIN_NS (5 * TIME_NS_PER_S)   /* after a disk that did not take it */
 #define LATEST_NS (60 * TIME_NS_PER_S) /* for sound to come, and for a disk to take it */
+#define SAID_NS (60 * TIME_NS_PER_S)   /* how long a failure is said */
 #define MOST_FRAMES ((size_t)60 * 1000 * 1000)
 
 struct waiting {
@@ -35,12 +36,14 @@ struct clips {
     struct sound_entry_facts done[CLIPS_MAX_WAITING];
     uint64_t n_failed;
     char problem[DISK_RING_PROBLEM_SIZE];
+    int64_t problem_ns; /* monotonic */
 };
 
 static void fail(struct clips *clips, const char *why)
 {
     pthread_mutex_lock(&clips->lock);
     clips->n_failed++;
+    clips->problem_ns = clock_monotonic_ns();
     snprintf(clips->problem, sizeof clips->problem, "%s", why);
     pthread_mutex_unlock(&clips->lock);
 }
@@ -131,12 +134,14 @@ static void settle(struct clips *clips, struct waiting *one, enum status status,
             fail(clips, text);
     }
     pthread_mutex_lock(&clips->lock);
-    if (status == STATUS_OK && clips->n_done < CLIPS_MAX_WAITING)
+    if (status == STATUS_OK && clips->n_done < CLIPS_MAX_WAITING) {
         clips->done[clips->n_done++] = *entry;
-    else if (disk && !clips->finishing && now_ns - one->asked_ns <= LATEST_NS * 10 &&
-             clips->n_waiting < CLIPS_MAX_WAITING) {
+        clips->problem[0] = '\0';
+    } else if (disk && !clips->finishing && now_ns - one->asked_ns <= LATEST_NS * 10 &&
+               clips->n_waiting < CLIPS_MAX_WAITING) {
         one->next_ns = now_ns + AGAIN_NS;
         clips->waiting[clips->n_waiting++] = *one;
+        clips->problem_ns = now_ns;
         snprintf(clips->problem, sizeof clips->problem, "%s", text);
     } else if (status == STATUS_OK)
         clips->n_failed++;
@@ -176,9 +181,11 @@ enum status clips_create(const struct clips_setup *setup, struct clips **out)
         return STATUS_NO_MEMORY;
     clips->setup = *setup;
     snprintf(clips->folder, sizeof clips->folder, "%s", setup->folder);
-    if (mkdir(clips->folder, 0755) != 0 && errno != EEXIST)
+    if (mkdir(clips->folder, 0755) != 0 && errno != EEXIST) {
+        clips->problem_ns = clock_monotonic_ns();
         snprintf(clips->problem, sizeof clips->problem, "%.90s cannot be made (%s)", clips->folder,
                  strerror(errno));
+    }
     pthread_mutex_init(&clips->lock, NULL);
     pthread_condattr_t monotonic;
     pthread_condattr_init(&monotonic);
@@ -221,6 +228,7 @@ enum status clips_ask(struct clips *clips, const struct clip_request *request)
         status = STATUS_OK;
     } else {
         clips->n_failed++;
+        clips->problem_ns = clock_monotonic_ns();
         snprintf(clips->problem, sizeof clips->problem, "too many sounds to keep at once");
     }
     pthread_mutex_unlock(&clips->lock);
@@ -256,8 +264,6 @@ bool clips_take_done(struct clips *clips, struct sound_entry_facts *out)
         *out = clips->done[0];
         clips->n_done--;
         memmove(&clips->done[0], &clips->done[1], clips->n_done * sizeof *out);
-        if (!clips->n_waiting)
-            clips->problem[0] = '\0';
     }
     pthread_mutex_unlock(&clips->lock);
     return any;
@@ -266,7 +272,8 @@ bool clips_take_done(struct clips *clips, struct sound_entry_facts *out)
 uint64_t clips_get_problem(struct clips *clips, char *out, size_t size)
 {
     pthread_mutex_lock(&clips->lock);
-    snprintf(out, size, "%s", clips->problem);
+    bool old = clock_monotonic_ns() - clips->problem_ns > SAID_NS; /* the health entry stays */
+    snprintf(out, size, "%s", old ? "" : clips->problem);
     uint64_t n = clips->n_failed;
     pthread_mutex_unlock(&clips->lock);
     return n;

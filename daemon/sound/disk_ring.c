@@ -1,13 +1,9 @@
 /* The disk ring's thread; see disk_ring.h. */
-#include "sound/disk_ring.h"
 #include "base/time.h"
 #include "clock.h"
-#include "ring/ring.h"
-#include "sound/segments.h"
-#include "sound/sound_file.h"
+#include "sound/disk_ring_inner.h"
 #include <errno.h>
 #include <math.h>
-#include <pthread.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -18,39 +14,13 @@
 #define MEMORY_S 2.0 /* a disk that stands still for longer loses sound */
 #define PIECE_FRAMES 4096
 #define STEP_NS (TIME_NS_PER_S / 10)
-#define LONGEST_SEGMENT_S 60.0   /* or a tenth of the ring, and at least 5 s */
-#define SAME_NS 200000           /* times are whole microseconds, and lengths whole frames */
-#define HOLE_NS TIME_NS_PER_S    /* a longer hole begins a new file */
+#define LONGEST_SEGMENT_S 60.0 /* or a tenth of the ring, and at least 5 s */
+#define SAME_NS 200000         /* times are whole microseconds, and lengths whole frames */
+#define HOLE_NS TIME_NS_PER_S  /* a longer hole begins a new file */
+#define AGAIN_NS (10 * TIME_NS_PER_S)
 #define AGAIN_BYTES (8ULL << 20) /* more than what must stay free, before it writes again */
 
-struct ring_stream {
-    struct disk_ring_stream facts;
-    void *memory;
-    struct ring in, out; /* the stream's side; the thread's */
-    struct ring_mark held;
-    bool has_held;
-    float *piece; /* [PIECE_FRAMES * channels] */
-    struct sound_writer *writer;
-    struct segment segment; /* that the writer writes: its n_frames are ahead of the list's */
-    uint64_t dropped;       /* of the memory, as last looked at */
-};
-
-struct disk_ring {
-    struct disk_ring_setup setup;
-    char folder[DISK_RING_PATH_SIZE];
-    struct ring_stream streams[DISK_RING_MAX_STREAMS];
-    pthread_t thread;
-    bool has_thread, no_room;
-    int64_t segment_ns;
-    pthread_mutex_t lock; /* guards what follows */
-    pthread_cond_t wake;
-    bool stopping;
-    struct segments segments;
-    int64_t end_ns[DISK_RING_MAX_STREAMS];
-    struct disk_ring_state state;
-};
-
-static void path_of(const struct disk_ring *ring, const struct segment *segment,
+void disk_ring_path(const struct disk_ring *ring, const struct segment *segment,
                     char out[2 * DISK_RING_PATH_SIZE])
 {
     char name[SEGMENT_NAME_SIZE];
@@ -60,6 +30,7 @@ static void path_of(const struct disk_ring *ring, const struct segment *segment,
 
 static void set_problem(struct disk_ring *ring, const char *text)
 {
+    ring->has_problem = *text != '\0';
     pthread_mutex_lock(&ring->lock);
     snprintf(ring->state.problem, sizeof ring->state.problem, "%s", text);
     pthread_mutex_unlock(&ring->lock);
@@ -74,7 +45,7 @@ static bool drop_oldest(struct disk_ring *ring)
     size_t i = segments_oldest(&ring->segments);
     bool any = i < ring->segments.n;
     if (any) {
-        path_of(ring, &ring->segments.all[i], path);
+        disk_ring_path(ring, &ring->segments.all[i], path);
         segments_remove(&ring->segments, i);
     }
     pthread_mutex_unlock(&ring->lock);
@@ -143,8 +114,7 @@ static void keep_room(struct disk_ring *ring)
                  (unsigned long long)(leave >> 20));
         set_problem(ring, text);
     } else if (ring->no_room && left >= leave + (leave < AGAIN_BYTES ? leave : AGAIN_BYTES)) {
-        ring->no_room = false;
-        set_problem(ring, "");
+        ring->no_room = clock_monotonic_ns() - ring->failed_ns < AGAIN_NS;
     }
 }
 
@@ -160,7 +130,7 @@ static enum status open_segment(struct disk_ring *ring, uint32_t number, int64_t
                                        .start_ns = start_ns,
                                        .rate_hz = stream->facts.rate_hz,
                                        .open = true};
-    path_of(ring, &stream->segment, path);
+    disk_ring_path(ring, &stream->segment, path);
     enum status status = sound_writer_create(path, stream->facts.rate_hz, stream->facts.n_channels,
                                              ring->setup.zero_unix_ns + start_ns, &stream->writer);
     if (status != STATUS_OK)
@@ -220,6 +190,8 @@ static void write_piece(struct disk_ring *ring, uint32_t number, const struct ri
         status = sound_writer_put(stream->writer, stream->piece, mark->n_frames);
     if (status == STATUS_OK) {
         stream->segment.n_frames += mark->n_frames;
+        if (ring->has_problem)
+            set_problem(ring, ""); /* it is over when sound is on the disk again */
         return;
     }
     lose(ring, stream, mark->n_frames);
@@ -227,6 +199,7 @@ static void write_piece(struct disk_ring *ring, uint32_t number, const struct ri
         return;
     close_segment(ring, stream);
     ring->no_room = true; /* until keep_room finds room again */
+    ring->failed_ns = clock_monotonic_ns();
     set_problem(ring, "the disk does not take sound: it is not kept");
     drop_oldest(ring);
 }
@@ -324,7 +297,7 @@ static enum status find(struct disk_ring *ring)
     if (mkdir(ring->folder, 0755) != 0 && errno != EEXIST) {
         snprintf(ring->state.problem, sizeof ring->state.problem, "%.100s cannot be made (%s)", ring->folder,
                  strerror(errno));
-        ring->no_room = true;
+        ring->no_room = ring->has_problem = true;
         return STATUS_OK;
     }
     enum status status = segments_find(&ring->segments, ring->folder, ring->setup.run > 1);
@@ -413,72 +386,4 @@ void disk_ring_get_state(struct disk_ring *ring, struct disk_ring_state *out)
     }
     out->from_ns = ring->segments.n ? ring->segments.all[0].start_ns : out->to_ns;
     pthread_mutex_unlock(&ring->lock);
-}
-
-/* ---- reading */
-
-/* The files of a stream that hold anything of a stretch, copied; the caller frees. */
-static enum status pick_segments(struct disk_ring *ring, uint32_t stream, int64_t from_ns, int64_t to_ns,
-                                 struct segments *out)
-{
-    enum status status = STATUS_OK;
-    pthread_mutex_lock(&ring->lock);
-    for (size_t i = 0; i < ring->segments.n && status == STATUS_OK; i++) {
-        const struct segment *segment = &ring->segments.all[i];
-        if (segment->stream == stream && segment->n_frames > 0 && segment->start_ns < to_ns &&
-            segment_end_ns(segment) > from_ns)
-            status = segments_add(out, segment);
-    }
-    pthread_mutex_unlock(&ring->lock);
-    return status;
-}
-
-/* Reads one file's part; returns how many frames of out it filled. */
-static size_t read_part(const struct disk_ring *ring, const struct segment *segment, uint32_t channel,
-                        int64_t from_ns, struct disk_ring_sound *out)
-{
-    char path[2 * DISK_RING_PATH_SIZE];
-    int64_t offset = llround((double)(segment->start_ns - from_ns) * 1e-9 * out->rate_hz);
-    uint64_t skip = offset < 0 ? (uint64_t)-offset : 0;
-    size_t at = offset > 0 ? (size_t)offset : 0;
-    if (segment->rate_hz != out->rate_hz || channel > segment->n_channels || skip >= segment->n_frames ||
-        at >= out->n)
-        return 0;
-    uint64_t left = segment->n_frames - skip;
-    size_t n = left < out->n - at ? (size_t)left : out->n - at;
-    path_of(ring, segment, path);
-    return sound_read_channel(path, channel, skip, out->samples + at, n) == STATUS_OK ? n : 0;
-}
-
-enum status disk_ring_read(struct disk_ring *ring, uint32_t stream, uint32_t channel, int64_t from_ns,
-                           int64_t to_ns, size_t most, struct disk_ring_sound *out)
-{
-    if (stream < 1 || stream > ring->setup.n_streams || channel < 1 ||
-        channel > ring->setup.streams[stream - 1].n_channels || to_ns <= from_ns)
-        return STATUS_BAD_ARGUMENT;
-    struct segments parts = {0};
-    enum status status = pick_segments(ring, stream, from_ns, to_ns, &parts);
-    struct disk_ring_sound sound = {.rate_hz = ring->setup.streams[stream - 1].rate_hz};
-    int64_t end_ns = from_ns;
-    for (size_t i = 0; i < parts.n; i++)
-        end_ns = segment_end_ns(&parts.all[i]) > end_ns ? segment_end_ns(&parts.all[i]) : end_ns;
-    double n = round((double)((end_ns < to_ns ? end_ns : to_ns) - from_ns) * 1e-9 * sound.rate_hz);
-    sound.n = n < (double)most ? (size_t)n : most;
-    if (status == STATUS_OK && sound.n == 0)
-        status = STATUS_NOT_FOUND;
-    if (status == STATUS_OK && !(sound.samples = calloc(sound.n, sizeof *sound.samples)))
-        status = STATUS_NO_MEMORY;
-    size_t filled = 0;
-    for (size_t i = 0; i < parts.n && status == STATUS_OK; i++)
-        filled += read_part(ring, &parts.all[i], channel, from_ns, &sound);
-    segments_destroy(&parts);
-    if (status == STATUS_OK && filled == 0)
-        status = STATUS_NOT_FOUND;
-    if (status != STATUS_OK) {
-        free(sound.samples);
-        return status;
-    }
-    sound.missing_s = sound.n > filled ? (double)(sound.n - filled) / sound.rate_hz : 0;
-    *out = sound;
-    return STATUS_OK;
 }

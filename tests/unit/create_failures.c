@@ -12,6 +12,7 @@
 #include "dsp/decimate.h"
 #include "dsp/spectrum.h"
 #include "http/board.h"
+#include "http/player.h"
 #include "level/exposure.h"
 #include "level/health.h"
 #include "level/impulses.h"
@@ -30,6 +31,10 @@
 #include "settings/criteria.h"
 #include "settings/permit.h"
 #include "settings/scene.h"
+#include "sound/clip_store.h"
+#include "sound/clips.h"
+#include "sound/disk_ring.h"
+#include "sound/keeper.h"
 #include "watcher.h"
 #include <fftw3.h>
 #include <math.h>
@@ -220,16 +225,28 @@ CASE(fit, fit_create(100, 0, &made))
 CASE(tally,
      tally_create(&(struct tally_setup){.criteria = &criteria, .n_streams = 2, .loss_n_db = 15}, &made))
 CASE(render, render_create(&scene.scene, &made))
+/* A folder that cannot be made is no error: what is kept in it then is nothing. */
+CASE(disk_ring, disk_ring_create(&(struct disk_ring_setup){.folder = "/proc/none/ring",
+                                                           .minutes = 1,
+                                                           .run = 1,
+                                                           .n_streams = 2,
+                                                           .streams = {{RATE, 2}, {RATE, 1}}},
+                                 &made))
+CASE(clips, clips_create(&(struct clips_setup){.folder = "/proc/none/clips", .run = 1}, &made))
+CASE(clip_store, clip_store_create("clips", &made))
+CASE(keeper, keeper_create(&(struct keeper_setup){.n_streams = 1}, &made))
+CASE(player, player_create(NULL, NULL, &made))
 
 #define LINE(object)                                                                                         \
     {                                                                                                        \
 #object, make_##object, end_##object                                                                 \
     }
 static const struct create_case cases[] = {
-    LINE(decimator), LINE(spectrum), LINE(background), LINE(meter),    LINE(health),  LINE(impulse_finder),
-    LINE(tones),     LINE(pulses),   LINE(others),     LINE(gate),     LINE(blocks),  LINE(strips),
-    LINE(listen),    LINE(watch),    LINE(minutes),    LINE(merge),    LINE(watcher), LINE(board),
-    LINE(render),    LINE(exposure), LINE(fit),        LINE(together), LINE(tally),
+    LINE(decimator), LINE(spectrum),   LINE(background), LINE(meter),    LINE(health),  LINE(impulse_finder),
+    LINE(tones),     LINE(pulses),     LINE(others),     LINE(gate),     LINE(blocks),  LINE(strips),
+    LINE(listen),    LINE(watch),      LINE(minutes),    LINE(merge),    LINE(watcher), LINE(board),
+    LINE(render),    LINE(exposure),   LINE(fit),        LINE(together), LINE(tally),   LINE(disk_ring),
+    LINE(clips),     LINE(clip_store), LINE(keeper),     LINE(player),
 };
 
 static void fail_each_allocation(const struct create_case *one)
