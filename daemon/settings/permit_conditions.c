@@ -124,10 +124,8 @@ static void read_limits(struct permit_reader *reader, struct group_reader *root)
 static void read_records(struct permit_reader *reader, struct group_reader *root)
 {
     struct permit *permit = reader->permit;
-    unsigned n = group_count(root, "records", READER_OPTIONAL);
-    if (n > PERMIT_MAX_RECORDS)
-        group_problem(root, "records", "has %u; allowed: at most %d", n, PERMIT_MAX_RECORDS);
-    for (unsigned i = 0; i < n && i < PERMIT_MAX_RECORDS; i++) {
+    unsigned n = group_count_to(root, "records", READER_OPTIONAL, PERMIT_MAX_RECORDS);
+    for (unsigned i = 0; i < n; i++) {
         struct group_reader group;
         struct permit_record *record = &permit->records[permit->n_records++];
         group_at(root, "records", i, &group);

@@ -26,10 +26,8 @@ static void read_pre_watch(struct permit_reader *reader, struct group_reader *ro
     struct group_reader group, row;
     group_child(root, "pre_watch", READER_REQUIRED, &group);
     read_pre_watch_row(reader, &group, false);
-    unsigned n = group_count(&group, "deeper", READER_OPTIONAL);
-    if (n >= PERMIT_MAX_PRE_WATCHES)
-        group_problem(&group, "deeper", "has %u rows; allowed: at most %d", n, PERMIT_MAX_PRE_WATCHES - 1);
-    for (unsigned i = 0; i < n && i + 1 < PERMIT_MAX_PRE_WATCHES; i++) {
+    unsigned n = group_count_to(&group, "deeper", READER_OPTIONAL, PERMIT_MAX_PRE_WATCHES - 1);
+    for (unsigned i = 0; i < n; i++) {
         group_at(&group, "deeper", i, &row);
         read_pre_watch_row(reader, &row, true);
         group_done(&row);
@@ -113,10 +111,8 @@ static void read_break(struct permit_reader *reader, struct group_reader *root)
     unsigned worth = BREAK_WATCH_NOTHING;
     group_child(root, "break", READER_REQUIRED, &group);
     read_break_row(reader, &group);
-    unsigned n = group_count(&group, "longer", READER_OPTIONAL);
-    if (n >= PERMIT_MAX_BREAKS)
-        group_problem(&group, "longer", "has %u rows; allowed: at most %d", n, PERMIT_MAX_BREAKS - 1);
-    for (unsigned i = 0; i < n && i + 1 < PERMIT_MAX_BREAKS; i++) {
+    unsigned n = group_count_to(&group, "longer", READER_OPTIONAL, PERMIT_MAX_BREAKS - 1);
+    for (unsigned i = 0; i < n; i++) {
         group_at(&group, "longer", i, &row);
         read_break_row(reader, &row);
         group_done(&row);

@@ -353,11 +353,8 @@ static bool fill_text(struct group_reader *group, char text[PERMIT_TEXT_SIZE])
 
 void permit_read_fills(struct group_reader *settings, struct permit_fills *out)
 {
-    unsigned n = group_count(settings, "permit_values", READER_OPTIONAL);
-    if (n > PERMIT_MAX_FILLS)
-        group_problem(settings, "permit_values", "states %u values; allowed: at most %d", n,
-                      PERMIT_MAX_FILLS);
-    for (unsigned i = 0; i < n && i < PERMIT_MAX_FILLS; i++) {
+    unsigned n = group_count_to(settings, "permit_values", READER_OPTIONAL, PERMIT_MAX_FILLS);
+    for (unsigned i = 0; i < n; i++) {
         struct group_reader group;
         struct permit_fill *fill = &out->fills[out->n++];
         group_at(settings, "permit_values", i, &group);

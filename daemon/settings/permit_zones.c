@@ -6,10 +6,8 @@
 /* group_sets = ( { name = "marine mammals"; groups = { value = [...]; mark; source } }, ... ). */
 void permit_read_sets(struct permit_reader *reader, struct group_reader *root)
 {
-    unsigned n = group_count(root, "group_sets", READER_OPTIONAL);
-    if (n > PERMIT_MAX_SETS)
-        group_problem(root, "group_sets", "has %u sets; allowed: at most %d", n, PERMIT_MAX_SETS);
-    for (unsigned i = 0; i < n && i < PERMIT_MAX_SETS; i++) {
+    unsigned n = group_count_to(root, "group_sets", READER_OPTIONAL, PERMIT_MAX_SETS);
+    for (unsigned i = 0; i < n; i++) {
         struct group_reader group;
         struct group_set set = {0};
         group_at(root, "group_sets", i, &group);
@@ -76,10 +74,8 @@ static void read_zone(struct permit_reader *reader, struct group_reader *group, 
 void permit_read_zones(struct permit_reader *reader, struct group_reader *root)
 {
     struct permit *permit = reader->permit;
-    unsigned n = group_count(root, "zones", READER_REQUIRED);
-    if (n > PERMIT_MAX_ZONES)
-        group_problem(root, "zones", "has %u zones; allowed: at most %d", n, PERMIT_MAX_ZONES);
-    for (unsigned i = 0; i < n && i < PERMIT_MAX_ZONES; i++) {
+    unsigned n = group_count_to(root, "zones", READER_REQUIRED, PERMIT_MAX_ZONES);
+    for (unsigned i = 0; i < n; i++) {
         struct group_reader group;
         group_at(root, "zones", i, &group);
         read_zone(reader, &group, &permit->zones[permit->n_zones++]);
@@ -101,10 +97,8 @@ static void read_deeper(struct permit_reader *reader, struct group_reader *paren
 void permit_read_clearances(struct permit_reader *reader, struct group_reader *root)
 {
     struct permit *permit = reader->permit;
-    unsigned n = group_count(root, "clearances", READER_REQUIRED);
-    if (n > PERMIT_MAX_CLEARANCES)
-        group_problem(root, "clearances", "has %u; allowed: at most %d", n, PERMIT_MAX_CLEARANCES);
-    for (unsigned i = 0; i < n && i < PERMIT_MAX_CLEARANCES; i++) {
+    unsigned n = group_count_to(root, "clearances", READER_REQUIRED, PERMIT_MAX_CLEARANCES);
+    for (unsigned i = 0; i < n; i++) {
         struct group_reader group;
         struct permit_clearance *clearance = &permit->clearances[permit->n_clearances++];
         group_at(root, "clearances", i, &group);

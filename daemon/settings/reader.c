@@ -311,6 +311,15 @@ unsigned group_count(struct group_reader *group, const char *key, bool required)
     return (unsigned)config_setting_length(member);
 }
 
+unsigned group_count_to(struct group_reader *group, const char *key, bool required, unsigned most)
+{
+    unsigned n = group_count(group, key, required);
+    if (n <= most)
+        return n;
+    group_problem(group, key, "has %u; allowed: at most %u", n, most);
+    return most;
+}
+
 void group_at(struct group_reader *group, const char *key, unsigned i, struct group_reader *out)
 {
     config_setting_t *member = ask(group, key, READER_OPTIONAL);

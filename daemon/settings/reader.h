@@ -73,6 +73,8 @@ bool group_text_at(struct group_reader *group, const char *key, unsigned i, char
 bool group_child(struct group_reader *group, const char *key, bool required, struct group_reader *out);
 /* How many groups a list ( { }, { } ) has; 0 when absent. Then the i-th of them. */
 unsigned group_count(struct group_reader *group, const char *key, bool required);
+/* The same where there is room for so many: more are a problem, and are not counted. */
+unsigned group_count_to(struct group_reader *group, const char *key, bool required, unsigned most);
 void group_at(struct group_reader *group, const char *key, unsigned i, struct group_reader *out);
 
 /* The i-th member of a group whose keys are not known beforehand, its value as text (true and false for

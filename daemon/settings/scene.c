@@ -102,11 +102,7 @@ static void read_step(struct group_reader *group, void *out)
 static uint32_t read_list(struct group_reader *group, const char *key, uint32_t max, void *array, size_t size,
                           void (*read)(struct group_reader *group, void *out))
 {
-    unsigned n = group_count(group, key, READER_OPTIONAL);
-    if (n > max) {
-        group_problem(group, key, "has %u entries; allowed: at most %u", n, max);
-        n = max;
-    }
+    unsigned n = group_count_to(group, key, READER_OPTIONAL, max);
     for (unsigned i = 0; i < n; i++) {
         struct group_reader item;
         group_at(group, key, i, &item);

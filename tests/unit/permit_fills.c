@@ -5,6 +5,8 @@
 #include "base/mark.h"
 #include "support/permits.h"
 #include <stdlib.h>
+#include <sys/stat.h>
+#include <unistd.h>
 
 #define MAX_OPEN 64
 
@@ -221,9 +223,41 @@ static void a_site_states_its_consent(void **state)
     load_with("accobams-2019", "zones[0].groups", "whale", "has no group \"whale\"");
 }
 
+/* A list that is longer than there is room for is one problem, with its number, and nothing is written beyond
+ * the room. */
+static void more_than_there_is_room_for_is_said_once(void **state)
+{
+    (void)state;
+    static const char *const path = "build/try/too-many.cfg";
+    char block[4096];
+    size_t n;
+    FILE *from = fopen("config/permits/demonstration.cfg", "r");
+    mkdir("build/try", 0755);
+    FILE *to = fopen(path, "w");
+    assert_true(from && to);
+    while ((n = fread(block, 1, sizeof block, from)) > 0)
+        assert_int_equal(fwrite(block, 1, n, to), n);
+    fprintf(to, "\nrecords = (");
+    for (int i = 0; i < PERMIT_MAX_RECORDS + 3; i++)
+        fprintf(to,
+                "%s{ what = { value = \"report %d\"; mark = \"invented\"; source = \"a test\"; };"
+                " within_hours = { value = 1; mark = \"invented\"; source = \"a test\"; }; }",
+                i ? ", " : "", i);
+    fprintf(to, ");\n");
+    fclose(from);
+    fclose(to);
+    struct problems problems = {0};
+    assert_int_equal(permit_load(path, NULL, &problems, &permit), STATUS_BAD_FORMAT);
+    assert_int_equal(problems.count, 1);
+    assert_non_null(strstr(problems.lines.data, "records: has 11; allowed: at most 8"));
+    problems_destroy(&problems);
+    unlink(path);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
+        cmocka_unit_test(more_than_there_is_room_for_is_said_once),
         cmocka_unit_test(every_preset),
         cmocka_unit_test(stated_values_come_back_from_a_ledger),
         cmocka_unit_test(a_site_states_its_consent),
