@@ -91,23 +91,18 @@ static void take_sums(void *context, const struct outcome *outcome)
 }
 
 /* Sums of continuous sound are made of the entries of its levels, so that they follow from the ledger. */
-static void take_minute(void *context, const struct minute_body *body)
+static bool sums_by_the_minute(const struct watcher *watcher)
 {
-    const struct outcome_sink sums = {take_sums, context};
-    struct watcher *watcher = context;
-    const struct tally_minute minute = {.watch_ns = body->watch_ns,
-                                        .run = body->run,
-                                        .stream = body->stream,
-                                        .n = body->n,
-                                        .seconds = body->seconds};
-    if (watcher->setup.tally && tally_wants_levels(watcher->setup.tally))
-        keep_status(watcher, tally_take_minute(watcher->setup.tally, watcher->setup.watch, &minute, &sums));
+    return watcher->setup.tally && tally_wants_levels(watcher->setup.tally);
 }
 
-static bool comes_by_the_minute(const struct watcher *watcher, const struct outcome *outcome)
+static void take_minute(void *context, const struct minute_body *body)
 {
-    return outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_LEVEL &&
-           tally_wants_levels(watcher->setup.tally);
+    struct watcher *watcher = context;
+    const struct tally_minute minute = {body->watch_ns, body->run, body->stream, body->n, body->seconds};
+    if (sums_by_the_minute(watcher))
+        keep_status(watcher, tally_take_minute(watcher->setup.tally, watcher->setup.watch, &minute,
+                                               &(struct outcome_sink){take_sums, watcher}));
 }
 
 static void take_outcome(void *context, const struct outcome *outcome)
@@ -129,7 +124,8 @@ static void take_outcome(void *context, const struct outcome *outcome)
     keep_status(watcher, recorder_take(watcher->setup.recorder, outcome));
     if (watcher->setup.sound)
         keeping_take(watcher->setup.sound, outcome);
-    if (watcher->setup.tally && !comes_by_the_minute(watcher, outcome))
+    bool level = outcome->kind == OUTCOME_EVENT && outcome->as.event.kind == EVENT_LEVEL;
+    if (watcher->setup.tally && !(level && sums_by_the_minute(watcher)))
         keep_status(watcher, tally_take(watcher->setup.tally, outcome, &sums));
 }
 
@@ -139,14 +135,6 @@ static void push(struct watcher *watcher, struct event *event)
     event->run = watcher->setup.run;
     entry_round(event);
     keep_status(watcher, watch_push(watcher->setup.watch, event, &sink));
-}
-
-/* What people did not say happened when it became known; a time ahead stays as it was said, and is found. */
-static void date_note(struct note *note, int64_t known_ns)
-{
-    note->known_ns = known_ns;
-    if (note->occurred_ns == 0)
-        note->occurred_ns = known_ns;
 }
 
 /* Notes of the timetable that are due before or at a watch time. */
@@ -159,7 +147,6 @@ static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
             return;
         struct event event = {.kind = EVENT_NOTE, .known_ns = at_ns};
         event.as.note = timed->note;
-        date_note(&event.as.note, at_ns);
         event.counter = watcher->note_counter + 1;
         push(watcher, &event);
         watcher->next_note++;
@@ -168,7 +155,6 @@ static void push_due_notes(struct watcher *watcher, int64_t watch_ns)
 
 static void push_entered_note(struct watcher *watcher, struct event *event)
 {
-    date_note(&event->as.note, event->known_ns);
     event->counter = watcher->note_counter + 1;
     push(watcher, event);
     merge_note_taken(watcher->setup.merge, watcher->note_counter);
