@@ -72,9 +72,9 @@ function showAnswer(advice, withdrawn) {
   button.disabled = asks && sending === advice.id;
   // What became of it, once it was seen: each is an answer of its own, with its own time.
   const open = Boolean(mine && mine.answer === "seen");
-  $("next").hidden = !open;
-  $("stopped").hidden = !open || advice.advice !== "stop";
   if (!open) $("decline").hidden = true;
+  $("next").hidden = !open || !$("decline").hidden;
+  $("stopped").hidden = !open || advice.advice !== "stop";
   let text = problem || (asks ? "" : "Nothing to acknowledge now.");
   if (mine && !problem) text = ANSWERED[mine.answer] + (mine.person || "?") + " at " + utc(mine.time_s) + " UTC.";
   else if (asks && !problem && advice.acknowledgements.length)
@@ -136,9 +136,13 @@ $("acknowledge").addEventListener("click", () => acknowledge("seen"));
 $("person").addEventListener("keydown", (event) => event.key === "Enter" && !$("acknowledge").hidden && acknowledge("seen"));
 $("stopped").addEventListener("click", () => acknowledge("stopped"));
 $("cannot").addEventListener("click", () => {
-  $("decline").hidden = !$("decline").hidden;
-  $("cannot").setAttribute("aria-expanded", String(!$("decline").hidden));
-  if (!$("decline").hidden) $("decline").elements.rank.focus();
+  $("decline").hidden = false;
+  $("decline").elements.rank.focus();
+  draw();
+});
+$("decline").addEventListener("reset", () => {
+  $("decline").hidden = true;
+  draw();
 });
 $("decline").addEventListener("submit", (event) => {
   event.preventDefault();

@@ -44,6 +44,9 @@ function drawAdvice(advice, withdrawn) {
   setText($("until"), until === null ? "–" : utc(until) + " UTC, " + untilLeft(advice.advice, until - watchNow()));
   $("requires").parentNode.hidden = !(advice && advice.requires) || withdrawn;
   setText($("requires"), (advice && advice.requires) || "–");
+  const stops = Boolean(advice && adviceWords(advice.advice).alert && !adviceWords(advice.advice).withdrawable);
+  $("sheet").hidden = !stops;
+  if (stops) $("sheet").firstChild.href = "/sheet?advice=" + encodeURIComponent(advice.id);
   document.title = (advice && !withdrawn ? words.words + " – " : "") + "Observer";
 }
 
