@@ -111,6 +111,33 @@ def the_stop(observer, crew):
     figure("acknowledged, and shown on the crew's page, in %.0f ms" % (1000 * took))
     seen, _ = observer.until("return document.getElementById('crew').textContent.includes('acknowledged by C. Crew')", 2)
     check("and the observer's page shows it", seen, observer.text("#crew"))
+    stop_sheet(observer, start)
+
+
+def stop_sheet(observer, stopped_at):
+    """One sheet about the stop, whole within 10 s of it or of its acknowledgement, whichever was later here."""
+    address = observer.script("return document.querySelector('#sheet a').href")
+    page = observer.driver.current_window_handle
+    observer.driver.switch_to.new_window("tab")
+    opened = time.monotonic()
+    observer.open(address)
+    whole, _ = observer.until("return document.querySelectorAll('#behind li').length > 1 && document.querySelectorAll('#groups li').length === 10", 10)
+    figure("the stop sheet was whole %.1f s after it was opened, %.1f s after the stop" % (time.monotonic() - opened, time.monotonic() - stopped_at))
+    facts = observer.text("#facts") or ""
+    check("the stop sheet is whole, with what is behind the stop", whole and observer.text("#words").startswith("STOP, "), observer.text("main"))
+    check("it says who acknowledged and when, the last impulse and the earliest restart",
+          "crew, C. Crew" in facts and "Last impulse heard" in facts and "Earliest restart" in facts, facts)
+    check("where the animal may be, with its doubt", "90 % between" in observer.text("#contacts") or "not known" in observer.text("#contacts"),
+          observer.text("#contacts"))
+    check("and of each group whether it could have been heard", "Turtle: no: no call of it is proof" in observer.text("#groups")
+          and "Delphinid: by its calls" in observer.text("#groups"), observer.text("#groups"))
+    heard, _ = observer.until("return !document.getElementById('sound').hidden", 8)
+    playable = heard and observer.driver.execute_async_script(
+        "const done = arguments[0]; fetch(document.getElementById('sound').src).then(r => r.arrayBuffer()).then(b => done(b.byteLength), () => done(0))")
+    check("the sound that led to it can be heard", playable and playable > 10000, (playable, observer.text("#sound_words")))
+    observer.picture("chain-3-stop-sheet")
+    observer.driver.close()
+    observer.driver.switch_to.window(page)
 
 
 def killed(daemon, observer, crew):
@@ -170,7 +197,7 @@ def the_ledger(ledger):
 
 
 def main():
-    signal.alarm(160)
+    signal.alarm(240)
     browsers = [Browser(1600, 1000), Browser(1280, 800)]
     with folder() as place:
         with open(place + "/scene.cfg", "w") as file:
