@@ -6,17 +6,18 @@ const view = { from: 0, to: 0, steps: 300 };
 let ledger, first, last, timeAt, draw;
 let turn = 0;
 
+/** An answer, unless somebody asks for something else meanwhile. */
 async function ask(path, query) {
+  const mine = turn;
   const answer = await fetch(`/api/${path}?` + new URLSearchParams(query)), body = await answer.json();
+  if (mine !== turn && path !== "ledger") throw new Error("");
   if (!answer.ok) throw new Error(body.error);
   return body;
 }
-/** All pages of an answer, unless somebody asks for something else meanwhile. */
 async function all(path, query) {
-  const found = [], mine = turn;
+  const found = [];
   for (let after = 0; after !== null; ) {
     const page = await ask(path, { limit: 500, ...query, after });
-    if (mine !== turn) throw new Error("");
     found.push(...(page.entries || page.items || page.contacts || Object.entries(page.rows)));
     after = page.next;
   }
@@ -63,7 +64,7 @@ function zoom(from, to) {
 
 let steps = [], at = 0;
 async function showSteps(id) {
-  if (!steps.length) steps = (await all("entries", { kind: "advice,finding" })).map((e) => e.body.id);
+  if (at >= steps.length - 1) steps = (await all("entries", { kind: "advice,finding" })).map((e) => e.body.id);
   id ||= steps[0];
   at = steps.indexOf(id);
   setText($("at"), at < 0 ? "" : `${at + 1} of ${steps.length}`);
