@@ -44,14 +44,13 @@ function drawAdvice(advice, withdrawn) {
   setText($("until"), until === null ? "–" : utc(until) + " UTC, " + untilLeft(advice.advice, until - watchNow()));
   $("requires").parentNode.hidden = !(advice && advice.requires) || withdrawn;
   setText($("requires"), (advice && advice.requires) || "–");
-  const stops = Boolean(advice && adviceWords(advice.advice).alert && !adviceWords(advice.advice).withdrawable);
-  $("sheet").hidden = !stops;
-  if (stops) $("sheet").firstChild.href = "/sheet?advice=" + encodeURIComponent(advice.id);
   document.title = (advice && !withdrawn ? words.words + " – " : "") + "Observer";
 }
 
 function drawCrew(state) {
   const crew = adviceFor(state, "crew"), asks = Boolean(crew && adviceWords(crew.advice).alert);
+  $("sheet").hidden = !asks || adviceWords(crew.advice).withdrawable;
+  if (asks) $("sheet").firstChild.href = "/sheet?advice=" + encodeURIComponent(crew.id);
   const countdown = state.contacts.filter((c) => c.state === "open" && c.countdown_ends_s !== null && c.countdown_ends_s > watchNow());
   const lines = [{ key: "advice", text: crew ? crew.advice + (asks ? "" : ", shown") : "nothing shown" }];
   for (const { station, answer, voice } of asks ? stationAnswers(state, site, crew) : []) {

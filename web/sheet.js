@@ -49,7 +49,8 @@ function couldHear(group, advice, state) {
 }
 
 function play(advice, state) {
-  const clip = state.clips.find((one) => one.causes.includes(advice.id));
+  const same = state.advice.filter((one) => Math.abs(one.since_s - advice.since_s) < 2).map((one) => one.id); // the observer's is another entry
+  const clip = state.clips.find((one) => one.causes.some((cause) => same.includes(cause) || advice.causes.includes(cause)));
   $("sound").hidden = !clip;
   if (!clip) return setText($("sound_words"), "No sound is kept for it (an advice by sight or by the clock), or not yet.");
   const high = clip.high_hz > 12000, source = `/clip/${clip.id}?form=${high ? "shifted" : "as-is"}`;

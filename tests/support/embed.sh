@@ -5,7 +5,8 @@ echo '/* Generated from the files of web/. */'
 echo '#include "http/web.h"'
 lean() {
     case $1 in
-    *.js | *.css | *.html) sed -E 's/^[ \t]+//; /^\/\//d; /^\/\*.*\*\/$/d; /^$/d' "$1" ;;
+    *.css) sed -E 's/^[ \t]+//; /^\/\*.*\*\/$/d; /^$/d; s/ \{ /{/g; s/ \{$/{/; s/; /;/g; s/: /:/g; s/, /,/g; s/;? \}/}/g' "$1" ;;
+    *.js | *.html) sed -E 's/^[ \t]+//; /^\/\//d; /^\/\*.*\*\/$/d; /^$/d' "$1" ;;
     *) cat "$1" ;;
     esac
 }
