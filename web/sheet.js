@@ -22,7 +22,7 @@ function facts(advice, state) {
     ["Clause", advice.clause || "–"], ["Job", advice.job || "–"],
     ["Advised", at(advice.since_s) + (advice.confirmed ? "" : ", not yet confirmed by an observer") + (advice.recorded ? "" : ", not yet recorded")],
     ["Passed by voice", answers("passed")], ["Acknowledged", answers("seen")], ["Source stopped, said", answers("stopped")], ["Declined", answers("declined")],
-    ["Last impulse heard", last ? at(last.time_s) + late : "none"],
+    ["Last impulse heard", last ? at(last.time_s) + late : "none since the program started"],
     [untilTitle(advice.advice) || "Earliest restart", advice.until_s === null ? "nobody can tell yet" : at(advice.until_s) + (advice.in_force ? ", " + untilLeft(advice.advice, advice.until_s - watchNow()) : "")],
     ["Requires", advice.requires || "–"], ["In force", advice.in_force ? "yes" : "no longer"], ["Entry", advice.id],
   ];
