@@ -16,7 +16,7 @@ import numpy
 
 sys.path.insert(0, os.path.join(os.path.dirname(os.path.abspath(__file__)), "..", "support"))
 from daemon import Daemon  # noqa: E402
-from watch import BUILD, ask, body, check, figure, finish, folder, settings, verify  # noqa: E402
+from watch import BUILD, ROOT, ask, body, check, figure, finish, folder, settings, verify  # noqa: E402
 
 RATE = 48000
 SCENE = """seed = 5; duration_s = 400.0; rate_hz = 48000.0;
@@ -152,8 +152,18 @@ def serve(daemon, place, clips):
         got = get(daemon, path)[0]
         check("%s is answered %d" % (path, code), got == code, got)
     now_s = daemon.state()["watch_s"]
+    example(daemon, now_s)
     status, _, wav = get(daemon, "/api/hear?stream=1&from=%.3f&to=%.3f&form=as-is" % (now_s - 8, now_s - 2))
     check("a stretch of the ring can be heard", status == 200 and abs(len(samples(wav)[1]) / RATE - 6) < 0.01, status)
+
+
+def example(daemon, now_s):
+    """The curl line of docs/http.md, at a time that the ring holds."""
+    with open(os.path.join(ROOT, "docs/http.md")) as file:
+        [line] = [one.strip() for one in file if one.startswith("    curl ") and "/api/hear" in one]
+    line = line.replace(":8470", ":%d" % daemon.port).replace("from=60&to=65", "from=%.1f&to=%.1f" % (now_s - 8, now_s - 3))
+    done = subprocess.run(line.replace("> heard.wav", ""), shell=True, capture_output=True, timeout=20)
+    check("the example of docs/http.md gives sound", done.returncode == 0 and done.stdout[:4] == b"RIFF", (line, done.stdout[:100]))
 
 
 def hear_blows(daemon):
