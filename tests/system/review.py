@@ -238,11 +238,12 @@ def tampered(place, ledger):
     check("the copy is good at first", review.state("good")["state"] == "good")
     connection = sqlite3.connect(bad)
     connection.execute("UPDATE entry SET body = replace(body, 'stopped', 'stoppeD') WHERE kind = 'note'")
-    connection.execute("UPDATE entry SET body = '{\"id\":' WHERE seq = 14")
+    [first] = connection.execute("SELECT min(seq) FROM entry WHERE kind = 'contact'").fetchone()
+    connection.execute("UPDATE entry SET body = '{\"id\":' WHERE seq = ?", (first,))
     connection.commit()
     connection.close()
     said = review.state("faults")
-    check("what is changed while it is looked at is found", said["state"] == "faults" and 14 in [f["seq"] for f in said["faults"]], said)
+    check("what is changed while it is looked at is found", said["state"] == "faults" and first in [f["seq"] for f in said["faults"]], said)
     found = review.ask("/api/entries", kind="contact", limit=1)["entries"][0]
     check("a body that is no JSON is given as text", found["body"] == '{"id":', found)
     answers = [review.get(path, **query)[0] for path, query in [("/api/contacts", {}), ("/api/sample", {}), ("/api/explain", {"id": "1.0.finding.1"}),
