@@ -16,7 +16,7 @@
 #define ACCOUNT_PASSWORD_MIN 10
 #define ACCOUNT_PASSWORD_MAX 256
 
-/* Each may read; what else it may, access_may_enter says. */
+/* Each may read; what else it may, visitor_may_enter (http/visitor.h) says. */
 enum role { ROLE_NONE, ROLE_CLIENT, ROLE_AUDITOR, ROLE_CREW, ROLE_OBSERVER };
 
 struct account {

@@ -23,7 +23,7 @@ static int64_t wait_after(uint32_t n_failed)
         return 0;
     uint32_t doublings = n_failed - TRIES_FREE;
     int64_t wait_s = doublings < 6 ? INT64_C(1) << doublings : TRIES_LONGEST_S;
-    return (wait_s < TRIES_LONGEST_S ? wait_s : TRIES_LONGEST_S) * TIME_NS_PER_S;
+    return wait_s * TIME_NS_PER_S;
 }
 
 int64_t tries_wait_ns(const struct tries *tries, const char *key, int64_t now_ns)

@@ -17,11 +17,7 @@ static enum MHD_Result answer_taken(struct request *request)
     text_append(&text, "{\"id\":");
     text_json_string(&text, request->item.id);
     text_append(&text, "}\n");
-    enum MHD_Result result = text.failed ? MHD_NO
-                                         : http_answer(request->connection, MHD_HTTP_OK, "application/json",
-                                                       text.data, text.length);
-    text_destroy(&text);
-    return result;
+    return http_answer_json(request->connection, &text);
 }
 
 enum MHD_Result api_note(struct request *request)

@@ -96,9 +96,5 @@ enum MHD_Result api_who(struct request *request)
     text_append(&text, ",\"account\":");
     text_json_string(&text, request->visitor.account);
     text_append(&text, "}\n");
-    enum MHD_Result result = text.failed ? MHD_NO
-                                         : http_answer(request->connection, MHD_HTTP_OK, "application/json",
-                                                       text.data, text.length);
-    text_destroy(&text);
-    return result;
+    return http_answer_json(request->connection, &text);
 }

@@ -62,6 +62,15 @@ enum MHD_Result http_answer(struct MHD_Connection *connection, unsigned code, co
     return result;
 }
 
+enum MHD_Result http_answer_json(struct MHD_Connection *connection, struct text *text)
+{
+    enum MHD_Result result =
+        text->failed ? MHD_NO
+                     : http_answer(connection, MHD_HTTP_OK, "application/json", text->data, text->length);
+    text_destroy(text);
+    return result;
+}
+
 enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, const char *error,
                             const char *field, const char *allowed)
 {

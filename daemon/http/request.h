@@ -2,6 +2,7 @@
 #ifndef HTTP_REQUEST_H
 #define HTTP_REQUEST_H
 
+#include "base/text.h"
 #include "http/connections.h"
 #include "http/desk.h"
 #include "http/events.h"
@@ -79,6 +80,8 @@ const struct route *http_find_route(bool ashore, const char *method, const char 
 /* Queues an answer with the headers that every answer has; the body is copied. */
 enum MHD_Result http_answer(struct MHD_Connection *connection, unsigned code, const char *type,
                             const void *body, size_t length);
+/* Queues a JSON text as a good answer and destroys it; MHD_NO where it failed. */
+enum MHD_Result http_answer_json(struct MHD_Connection *connection, struct text *text);
 /* A refusal as JSON: error, field, allowed; the last two may be NULL. */
 enum MHD_Result http_refuse(struct MHD_Connection *connection, unsigned code, const char *error,
                             const char *field, const char *allowed);
